@@ -1,0 +1,13 @@
+"""The calculations: arrays in SI, frozen dataclasses, refusals of its own.
+
+The folders read as the chapters of the job:
+
+``substances``        formulas, molar masses
+``reactions``         equations, their balance, the stoichiometric matrix
+``streams``           what flows in and out, and at what conditions
+``mole_account``      the stoichiometric table and how far the extents can go
+``outlet_analysis``   the account estimated from plant readings
+``rates``             rate laws and their constants
+``reactors``          what size a conversion needs
+``numerics``          quadrature and root bracketing used by the chapters
+"""

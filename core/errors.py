@@ -1,0 +1,98 @@
+"""What the core says when it cannot answer.
+
+A refusal is a set of faults. A fault is a fact: a code of the catalogue
+(:mod:`core.problems`), the subject it concerns, a sentence, and the values
+that the sentence quotes, in SI with their dimension, so that whoever called
+can print them in the units of the request.
+
+::
+
+    Refused(Exception)        the request as a whole cannot be computed
+      .faults: tuple[Fault]   each one thing found, in the order found
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+
+Subject = tuple[str | int, ...]
+"""Names a thing in a core problem: ``("feed", "flows", "CO")``."""
+
+
+@dataclass(frozen=True)
+class Amount:
+    """A value in SI and its dimension (a name of :mod:`core.dimensions`)."""
+
+    value: float
+    dimension: str = "dimensionless"
+
+    def __str__(self) -> str:
+        """Show the SI value; the edge prints it in the caller's unit instead."""
+        return f"{self.value:.6g} ({self.dimension}, SI)"
+
+
+Fact = Amount | str | int
+"""A value quoted by a fault: an amount, a name or a count."""
+
+
+@dataclass(frozen=True)
+class Fault:
+    """One thing that stands against computing an answer.
+
+    Attributes
+    ----------
+    code : str
+        A code of :data:`core.problems.CATALOGUE`.
+    subject : Subject
+        What it concerns; the edge turns it into a pointer in the request.
+    detail : str
+        A sentence with ``{name}`` for each of ``facts``: what was found, what
+        is allowed and how to mend it.
+    facts : Mapping[str, Fact]
+        The values that ``detail`` quotes.
+    """
+
+    code: str
+    subject: Subject
+    detail: str
+    facts: Mapping[str, Fact] = field(default_factory=dict)
+
+    def __str__(self) -> str:
+        """Say the sentence with SI values."""
+        return self.detail.format_map({k: str(v) for k, v in self.facts.items()})
+
+
+class Refused(Exception):  # noqa: N818 - the word of the contract
+    """The problem cannot be computed as stated; ``faults`` says why."""
+
+    def __init__(self, faults: Fault | Iterable[Fault]) -> None:
+        self.faults = (faults,) if isinstance(faults, Fault) else tuple(faults)
+        super().__init__(self.faults)
+
+    def __str__(self) -> str:
+        return "; ".join(f"{fault.code}: {fault}" for fault in self.faults)
+
+
+def refuse(code: str, subject: Subject, detail: str, **facts: Fact) -> Refused:
+    """Return the refusal made of one fault, ready to be raised."""
+    return Refused(Fault(code, subject, detail, facts))
+
+
+@dataclass(frozen=True)
+class Note:
+    """Something an answer's reader must know: a remark or an assumption.
+
+    ``severity`` is ``info``, ``warning`` or ``caution``; a caution concerns
+    what can hurt someone.
+    """
+
+    code: str
+    detail: str
+    severity: str = "info"
+    subject: Subject = ()
+    facts: Mapping[str, Fact] = field(default_factory=dict)
+
+    def __str__(self) -> str:
+        """Say the sentence with SI values."""
+        return self.detail.format_map({k: str(v) for k, v in self.facts.items()})

@@ -1,0 +1,1 @@
+"""The stoichiometric table, and how far the extents can go."""

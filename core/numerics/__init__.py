@@ -1,0 +1,1 @@
+"""Quadrature and root bracketing, shared by the chapters."""

@@ -1,0 +1,1 @@
+"""The account that fits the plant's readings best, and its uncertainty."""

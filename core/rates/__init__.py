@@ -1,0 +1,1 @@
+"""Rate laws and their constants."""

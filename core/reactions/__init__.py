@@ -1,0 +1,1 @@
+"""Equations, their balance, and the stoichiometric matrix."""

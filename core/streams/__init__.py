@@ -1,0 +1,1 @@
+"""What flows in and out, known or as metered."""

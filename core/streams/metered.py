@@ -1,0 +1,136 @@
+"""A stream as the plant sees it: flow meters, analysers, temperatures, pressures.
+
+Everything here is what was read, not what is true; the account that fits the
+readings best is found by :mod:`core.outlet_analysis`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+from core.errors import Subject
+from core.streams.stream import StreamPhase
+
+Basis = Literal["mole", "mass", "volume", "concentration", "mass-concentration"]
+"""What an analysis counts. ``volume`` is the mole basis for a gas, and for a liquid is refused
+where no volumes are known; the two concentrations are mol/m3 and kg/m3."""
+
+FlowKind = Literal["amount", "mass", "volume"]
+"""mol/s, kg/s, or m3/s at the meter's own conditions."""
+
+
+@dataclass(frozen=True)
+class Measurement:
+    """One reading, SI.
+
+    Attributes
+    ----------
+    value : float
+        The reading, or the limit where ``bound`` says so.
+    u : float
+        Standard uncertainty; 0 means exact.
+    subject : Subject
+        Names the reading.
+    bound : "below", "above" or None
+        ``below``: a non-detect, the value lies between 0 and the limit.
+        ``above``: off scale, the value lies above the limit.
+    """
+
+    value: float
+    u: float
+    subject: Subject
+    bound: Literal["below", "above"] | None = None
+
+
+@dataclass(frozen=True)
+class Removal:
+    """A substance taken out of the sample before the analyser.
+
+    ``residual`` is its mole fraction (0 to 1) left in the sample that is
+    analysed: 0 when fully removed; a saturated sample leaves p_sat/P.
+    """
+
+    substance: int
+    residual: float = 0.0
+
+
+@dataclass(frozen=True)
+class Component:
+    """One value of an analysis: a substance, or a lump of several under one peak."""
+
+    weights: Mapping[int, float]
+    """Contribution of each substance, by its index in the account."""
+    measurement: Measurement
+
+
+@dataclass(frozen=True)
+class Analysis:
+    """An analysis as the analyser saw it.
+
+    Attributes
+    ----------
+    basis : Basis
+    components : tuple of Component
+    removed : tuple of Removal
+    balance : int or None
+        The substance that makes the sum 100 %: computed, never a reading.
+    normalised : bool
+        The values were scaled to 100 %: only their ratios carry information.
+    subject : Subject
+    """
+
+    basis: Basis
+    components: tuple[Component, ...]
+    subject: Subject
+    removed: tuple[Removal, ...] = ()
+    balance: int | None = None
+    normalised: bool = False
+
+
+@dataclass(frozen=True)
+class FlowReading:
+    """A flow meter's reading, of one substance or of the whole stream.
+
+    ``substance`` None is the total; ``as_analysed`` counts only what is left
+    after the removals of the stream's own analysis. ``kind`` ``volume`` of a
+    gas needs ``molar_volume`` (m3/mol at the meter's own conditions).
+    """
+
+    kind: FlowKind
+    measurement: Measurement
+    substance: int | None = None
+    as_analysed: bool = False
+    molar_volume: float | None = None
+
+
+@dataclass(frozen=True)
+class MeteredStream:
+    """One metered stream of the feed or the outlet.
+
+    Attributes
+    ----------
+    phase : StreamPhase
+    present : frozenset of int
+        Substances that may be in it. Of an outlet: all that the feed and the
+        reactions can bring, unless there are several outlet streams.
+    flows : tuple of FlowReading
+    analysis : Analysis or None
+    temperature, pressure : Measurement or None
+        K, Pa, of the stream: they give a gas its concentrations.
+    compressibility : float
+    density : Measurement or None
+        kg/m3, of a liquid.
+    subject : Subject
+    """
+
+    phase: StreamPhase
+    present: frozenset[int]
+    subject: Subject
+    flows: tuple[FlowReading, ...] = ()
+    analysis: Analysis | None = None
+    temperature: Measurement | None = None
+    pressure: Measurement | None = None
+    compressibility: float = 1.0
+    density: Measurement | None = None

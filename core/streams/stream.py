@@ -1,0 +1,68 @@
+"""A stream whose flows are known: what the table and the reactors work on."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
+
+StreamPhase = Literal["gas", "liquid"]
+
+
+@dataclass(frozen=True, eq=False)
+class Stream:
+    """Flows of every substance of the account, and the conditions they are at.
+
+    For a batch the flows are amounts (mol) and the volumetric flow a volume
+    (m3); everything else reads the same.
+
+    Attributes
+    ----------
+    flows : ndarray, shape (..., S)
+        mol/s (batch: mol).
+    in_phase : ndarray of bool, shape (S,)
+        Which substances are in the stream's own phase and so take part in its
+        volume; the others travel with it (a condensed product in a gas).
+    phase : StreamPhase
+    batch : bool
+        Whether the stream is the charge of a batch.
+    temperature, pressure : float or None
+        K and Pa (absolute), where stated.
+    compressibility : float
+        Z, -.
+    liquid_volumetric_flow : float or None
+        m3/s (batch: m3) of a liquid, where it can be known.
+    """
+
+    flows: FloatArray
+    in_phase: BoolArray
+    phase: StreamPhase
+    batch: bool = False
+    temperature: float | None = None
+    pressure: float | None = None
+    compressibility: float = 1.0
+    liquid_volumetric_flow: float | None = None
+
+    @property
+    def phase_total(self) -> FloatArray:
+        """Total of the substances in the stream's own phase, shape (...), mol/s."""
+        total: FloatArray = np.asarray(self.flows[..., self.in_phase].sum(axis=-1))
+        return total
+
+    @property
+    def volumetric_flow(self) -> FloatArray | None:
+        """Volumetric flow at the stream's own conditions, m3/s; None if not known.
+
+        A gas by v = Z R T F / P over the substances in the gas.
+        """
+        if self.phase == "liquid":
+            v = self.liquid_volumetric_flow
+            return None if v is None else np.asarray(v)
+        if self.temperature is None or self.pressure is None:
+            return None
+        per_mole = self.compressibility * GAS_CONSTANT * self.temperature / self.pressure
+        return self.phase_total * per_mole

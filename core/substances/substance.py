@@ -1,0 +1,48 @@
+"""What a substance is to the mole account."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Literal
+
+Phase = Literal["gas", "liquid", "solid"]
+
+
+@dataclass(frozen=True)
+class Formula:
+    """Atoms and charge of one formula unit.
+
+    Attributes
+    ----------
+    elements : Mapping[str, Fraction]
+        Atoms of each element, above zero.
+    charge : int
+        Elementary charges.
+    """
+
+    elements: Mapping[str, Fraction]
+    charge: int = 0
+
+
+@dataclass(frozen=True)
+class Substance:
+    """A substance of the account.
+
+    Attributes
+    ----------
+    name : str
+        As the caller writes it in equations and streams.
+    molar_mass : float
+        kg/mol.
+    formula : Formula or None
+        None for an opaque substance: known by its molar mass alone.
+    phase : Phase or None
+        Where stated, the phase it is found in; else that of its stream.
+    """
+
+    name: str
+    molar_mass: float
+    formula: Formula | None = None
+    phase: Phase | None = None

@@ -1,0 +1,1 @@
+"""Wire names, units and shapes: JSON to core types and back."""

@@ -1,0 +1,1 @@
+"""The web service: routes, problem details, operation, command line."""
