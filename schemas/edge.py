@@ -1,0 +1,381 @@
+"""The edge: where units become SI and pointers become subjects, and back.
+
+Reading a request yields a core problem and an :class:`EdgeMap`. The map knows
+which place of the request each core subject came from and in which unit each
+dimension is to be reported, so a result or a refusal of the core can be told
+in the caller's own words.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from typing import Any
+
+from core.constants import STANDARD_ATMOSPHERE
+from core.dimensions import DIMENSIONS
+from core.errors import Amount, Fact, Fault, Note, Refused, Subject
+from schemas.quantities import Bound, RawQuantity
+from schemas.shape import LocatedFault, MeaningError, child
+from schemas.units import (
+    DEFAULT_UNITS,
+    Unit,
+    UnknownUnit,
+    difference_to_si,
+    difference_unit,
+    find_unit,
+    is_difference_safe,
+    to_si,
+)
+
+Json = dict[str, Any]
+
+DIFFERENCES = {"temperature": "temperature_difference", "pressure": "pressure_difference"}
+
+
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """A quantity of the request in SI.
+
+    ``u`` is its standard uncertainty (SI), None where none was stated.
+    """
+
+    value: float
+    dimension: str
+    unit: str
+    u: float | None = None
+    u_shared: float | None = None
+    instrument: str | None = None
+    bound: Bound | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where a subject stands in the request, and the unit it was given in."""
+
+    pointer: str
+    unit: str | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Scale:
+    """How the SI values of one dimension are printed."""
+
+    unit: str
+    factor: float
+    offset: float
+
+
+@dataclass(frozen=True)
+class EdgeMap:
+    """From core subjects to places of the request, and from SI to its units."""
+
+    places: Mapping[Subject, Place]
+    scales: Mapping[str, Scale]
+
+    def place(self, subject: Subject) -> Place:
+        """Return the place of the subject, or of the nearest thing that holds it."""
+        for length in range(len(subject), 0, -1):
+            found = self.places.get(subject[:length])
+            if found is not None:
+                return found
+        return Place("")
+
+    def number(self, value: float, dimension: str, unit: str | None = None) -> Json:
+        """Return the Number of an SI value, in ``unit`` or the dimension's own."""
+        scale = self.scales[dimension] if unit is None else scale_of(unit)
+        return {"value": (value - scale.offset) / scale.factor, "unit": scale.unit}
+
+    def uncertain(
+        self,
+        value: float,
+        u: float,
+        dimension: str,
+        *,
+        coverage: float | None = None,
+        factor: float = 0.0,
+        unit: str | None = None,
+    ) -> Json:
+        """Return the Number of an SI value with its standard uncertainty.
+
+        With ``coverage`` also the interval, ``factor`` standard uncertainties wide
+        on each side.
+        """
+        scale = self.scales[dimension] if unit is None else scale_of(unit)
+        number = {
+            "value": (value - scale.offset) / scale.factor,
+            "unit": scale.unit,
+            "u": u / scale.factor,
+        }
+        if coverage is not None:
+            ends = (value - factor * u, value + factor * u)
+            number["interval"] = [(end - scale.offset) / scale.factor for end in ends]
+            number["coverage"] = coverage
+        return number
+
+    def say(self, fact: Fact) -> str:
+        """Return a fact in words, amounts in the units of the request."""
+        if not isinstance(fact, Amount):
+            return str(fact)
+        number = self.number(fact.value, fact.dimension)
+        unit = "" if number["unit"] == "1" else f" {number['unit']}"
+        return f"{number['value']:.6g}{unit}"
+
+    def _sentence(self, said: Fault | Note) -> str:
+        try:
+            return said.detail.format_map({k: self.say(v) for k, v in said.facts.items()})
+        except (KeyError, ValueError, IndexError):
+            # The caller's own braces stand in the sentence: it quotes no facts then.
+            return said.detail
+
+    def notes(self, notes: Iterable[Note]) -> list[Json]:
+        """Return notes as they stand in an answer."""
+        told = []
+        for note in notes:
+            entry = {"code": note.code, "detail": self._sentence(note), "severity": note.severity}
+            if note.subject:
+                entry["pointer"] = self.place(note.subject).pointer
+            told.append(entry)
+        return told
+
+    def locate(self, refused: Refused) -> MeaningError:
+        """Return the refusal told in the request's places and units."""
+        return MeaningError(
+            tuple(
+                LocatedFault(
+                    fault.code, self._sentence(fault), self.place(fault.subject).pointer
+                )
+                for fault in refused.faults
+            )
+        )
+
+    @contextmanager
+    def locating(self) -> Iterator[None]:
+        """Turn a refusal of the core raised inside into one that the caller can read."""
+        try:
+            yield
+        except Refused as refused:
+            raise self.locate(refused) from refused
+
+
+def scale_of(unit: str, atmospheric_pressure: float = STANDARD_ATMOSPHERE) -> Scale:
+    """Return how SI values are printed in a unit."""
+    known = find_unit(unit)
+    offset = atmospheric_pressure if known.gauge else known.offset
+    return Scale(unit, known.factor, offset)
+
+
+@dataclass
+class RequestReader:
+    """Collects what the second stage of reading finds: places, units, faults.
+
+    Every fault is kept and told at once, by :meth:`finish`.
+    """
+
+    atmospheric_pressure: float = STANDARD_ATMOSPHERE
+    places: dict[Subject, Place] = field(default_factory=dict)
+    used: dict[str, str] = field(default_factory=dict)
+    faults: list[LocatedFault] = field(default_factory=list)
+    assumed: list[Note] = field(default_factory=list)
+    notes: list[Note] = field(default_factory=list)
+
+    @classmethod
+    def of(cls, document: Mapping[str, Any]) -> RequestReader:
+        """Return a reader that knows the request's atmospheric pressure."""
+        reader = cls()
+        raw = document.get("atmospheric_pressure")
+        if raw is not None:
+            subject: Subject = ("atmospheric_pressure",)
+            stated = reader.quantity(
+                raw, "/atmospheric_pressure", subject, "pressure", above=0, gauge=False
+            )
+            if stated is not None:
+                reader.atmospheric_pressure = stated.value
+                reader.used.clear()
+        return reader
+
+    def at(self, subject: Subject, pointer: str, unit: str | None = None) -> Subject:
+        """Remember where a subject stands, and return it."""
+        self.places[subject] = Place(pointer, unit)
+        return subject
+
+    def fault(self, code: str, pointer: str, detail: str) -> None:
+        """Keep one fault of meaning."""
+        self.faults.append(LocatedFault(code, detail, pointer))
+
+    def unit(self, text: str, pointer: str) -> Unit | None:
+        """Look a unit up; an unknown one is a fault that names the nearest known."""
+        try:
+            return find_unit(text)
+        except UnknownUnit as unknown:
+            near = " or ".join(repr(name) for name in unknown.nearest)
+            hint = f" Did you mean {near}?" if near else ""
+            self.fault("unknown-unit", pointer, f"found the unit {text!r}: {unknown.reason}.{hint}")
+            return None
+
+    def quantity(
+        self,
+        raw: RawQuantity,
+        pointer: str,
+        subject: Subject,
+        *dimensions: str,
+        above: float | None = None,
+        at_least: float | None = None,
+        gauge: bool = True,
+    ) -> Measured | None:
+        """Return the quantity in SI; None when a fault was found and kept.
+
+        Parameters
+        ----------
+        raw : RawQuantity
+        pointer : str
+            Where it stands.
+        subject : Subject
+            What it is to the core.
+        *dimensions : str
+            Names of the dimensions allowed here.
+        above, at_least : float, optional
+            Bounds on the SI value.
+        gauge : bool
+            Whether a gauge pressure makes sense here.
+        """
+        unit = self.unit(raw.unit, pointer)
+        if unit is None:
+            return None
+        dimension = _dimension(unit, dimensions)
+        if dimension is None:
+            self.fault(*_wrong_dimension(raw, unit, pointer, dimensions))
+            return None
+        if unit.gauge and not gauge or dimension.endswith("_difference") and not _plain(unit):
+            detail = f"found {raw.text!r}; an absolute unit such as {DEFAULT_UNITS[dimension]!r}"
+            self.fault("unit-not-allowed", pointer, f"{detail} is needed here")
+            return None
+        value = to_si(raw.value, unit, atmospheric_pressure=self.atmospheric_pressure)
+        if not _within(value, above, at_least):
+            self.fault("out-of-range", pointer, _out_of_range(raw, dimension, above, at_least))
+            return None
+        self.used.setdefault(dimension, raw.unit)
+        if dimension in DIFFERENCES:
+            self.used.setdefault(DIFFERENCES[dimension], difference_unit(raw.unit))
+        self.places[subject] = Place(pointer, raw.unit)
+        u = self._uncertainty(raw, unit, value, pointer)
+        shared = None if raw.u_shared is None else float(difference_to_si(raw.u_shared, unit))
+        return Measured(value, dimension, raw.unit, u, shared, raw.instrument, raw.bound)
+
+    def _uncertainty(
+        self, raw: RawQuantity, unit: Unit, value: float, pointer: str
+    ) -> float | None:
+        if raw.u_rel is not None:
+            if not is_difference_safe(unit):
+                self.fault(
+                    "relative-uncertainty-of-offset-unit",
+                    child(pointer, "u_rel"),
+                    f"a share of {raw.text!r} depends on where its unit has its zero; state u as"
+                    f" a difference, in {difference_unit(raw.unit)}",
+                )
+                return None
+            return raw.u_rel * abs(value)
+        if raw.u is None:
+            return None
+        if raw.u_unit is None:
+            return float(difference_to_si(raw.u, unit))
+        stated = self.unit(raw.u_unit, child(pointer, "u"))
+        if stated is None:
+            return None
+        if stated.exponents != unit.exponents or not _plain(stated):
+            self.fault(
+                "wrong-dimension",
+                child(pointer, "u"),
+                f"found {raw.u:g} {raw.u_unit}; an uncertainty is a difference of the same kind"
+                f" as its value, such as one in {difference_unit(raw.unit)}",
+            )
+            return None
+        return float(difference_to_si(raw.u, stated))
+
+    def collect(self, refused: Refused) -> None:
+        """Keep the faults of a refusal that arose while reading."""
+        self.faults.extend(EdgeMap(self.places, self.scales({})).locate(refused).faults)
+
+    def scales(self, report_in: Mapping[str, str]) -> dict[str, Scale]:
+        """Return how each dimension is printed: as asked, as first used, by default."""
+        chosen = {**DEFAULT_UNITS, **self.used, **report_in, "dimensionless": "1"}
+        pressure = self.atmospheric_pressure
+        return {name: scale_of(unit, pressure) for name, unit in chosen.items()}
+
+    def finish(self, report_in: Mapping[str, str] | None) -> EdgeMap:
+        """Return the edge map.
+
+        Raises
+        ------
+        MeaningError
+            With every fault kept so far.
+        """
+        wanted = report_in or {}
+        for dimension, text in wanted.items():
+            pointer = child("/report_in", dimension)
+            unit = self.unit(text, pointer)
+            if unit is None:
+                continue
+            if _dimension(unit, (dimension,)) is None or (
+                dimension.endswith("_difference") and not _plain(unit)
+            ):
+                self.fault(
+                    "wrong-dimension",
+                    pointer,
+                    f"found the unit {text!r}; a unit of {words(dimension)} such as"
+                    f" {DEFAULT_UNITS[dimension]!r} is needed",
+                )
+        if self.faults:
+            raise MeaningError(tuple(self.faults))
+        return EdgeMap(self.places, self.scales(wanted))
+
+
+def words(dimension: str) -> str:
+    """Return a dimension's name as it is spoken."""
+    return dimension.replace("_", " ")
+
+
+def _plain(unit: Unit) -> bool:
+    return is_difference_safe(unit)
+
+
+def _dimension(unit: Unit, names: Iterable[str]) -> str | None:
+    for name in names:
+        if unit.exponents == DIMENSIONS[name]:
+            return name
+    return None
+
+
+def _within(value: float, above: float | None, at_least: float | None) -> bool:
+    if not math.isfinite(value):
+        return False
+    return (above is None or value > above) and (at_least is None or value >= at_least)
+
+
+def _out_of_range(
+    raw: RawQuantity, dimension: str, above: float | None, at_least: float | None
+) -> str:
+    if above is not None:
+        return f"found {raw.text!r}; a {words(dimension)} above zero (absolute) is needed"
+    if at_least is not None:
+        return f"found {raw.text!r}; a {words(dimension)} of zero or more is needed"
+    return f"found {raw.text!r}, which no calculation here can hold"
+
+
+def _wrong_dimension(
+    raw: RawQuantity, unit: Unit, pointer: str, dimensions: tuple[str, ...]
+) -> tuple[str, str, str]:
+    found = _dimension(unit, DIMENSIONS) or "something else"
+    wanted = " or ".join(
+        words(name)
+        if name == "dimensionless"
+        else f"{words(name)} (such as {DEFAULT_UNITS[name]!r})"
+        for name in dimensions
+    )
+    return (
+        "wrong-dimension",
+        pointer,
+        f"found {raw.text!r}, a quantity of {words(found)}; allowed here: {wanted}",
+    )

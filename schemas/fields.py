@@ -1,0 +1,463 @@
+"""Fields that read JSON types exactly, and say in the contract what they read.
+
+A stock float field takes ``"1.5"`` and ``true`` for numbers, so that what is
+published and what is done would differ; these do not. Each field carries the
+constraints that :mod:`schemas.contract` writes into the JSON Schema.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Mapping
+from functools import lru_cache
+from typing import Any
+
+from marshmallow import Schema, ValidationError, fields
+
+from schemas.quantities import (
+    LARGEST,
+    MAX_UNIT_LENGTH,
+    NUMBER_PATTERN,
+    QUANTITY_PATTERN,
+    READING_PATTERN,
+    UNIT_PATTERN,
+    RawQuantity,
+    check_magnitude,
+    clip,
+    parse_quantity,
+)
+from schemas.shape import ClosedSchema, Message, kind_of, message
+
+MAX_SUBSTANCES = 100
+MAX_NAME_LENGTH = 80
+NAME_PATTERN = r"^[^\x00-\x1f]{1,80}$"
+
+Published = dict[str, Any]
+Converter = Callable[[fields.Field[Any]], Published]
+
+
+def describe(text: str, **more: Any) -> dict[str, Any]:
+    """Return the metadata that puts a description into the contract."""
+    return {"description": text, **more}
+
+
+class StrictField(fields.Field[Any]):
+    """A field that publishes its own JSON Schema."""
+
+    def published(self, convert: Converter) -> Published:
+        """Return the JSON Schema of the field; ``convert`` does the same for inner fields."""
+        raise NotImplementedError
+
+
+def _wrong_type(wanted: str, value: object) -> ValidationError:
+    return ValidationError(message("wrong-type", f"found {kind_of(value)}; {wanted} is needed"))
+
+
+class Number(StrictField):
+    """A finite JSON number within bounds."""
+
+    def __init__(
+        self,
+        *,
+        at_least: float = -LARGEST,
+        above: float | None = None,
+        at_most: float = LARGEST,
+        integer: bool = False,
+        **kwargs: Any,
+    ) -> None:
+        super().__init__(**kwargs)
+        self.at_least, self.above, self.at_most, self.integer = at_least, above, at_most, integer
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> float:
+        if isinstance(value, bool) or not isinstance(value, int | float):
+            raise _wrong_type("a number", value)
+        if self.integer and value != int(value):
+            raise _wrong_type("a whole number", value)
+        low = self.at_least if self.above is None else self.above
+        if (
+            not self.at_least <= value <= self.at_most
+            or self.above is not None
+            and value <= self.above
+        ):
+            kind = "at least" if self.above is None else "above"
+            raise ValidationError(
+                message(
+                    "out-of-range",
+                    f"found {value:g}; allowed: {kind} {low:g} and at most {self.at_most:g}",
+                )
+            )
+        return int(value) if self.integer else float(value)
+
+    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+        """Return type and bounds."""
+        low = (
+            {"minimum": self.at_least} if self.above is None else {"exclusiveMinimum": self.above}
+        )
+        return {"type": "integer" if self.integer else "number", **low, "maximum": self.at_most}
+
+
+class Flag(StrictField):
+    """A JSON boolean."""
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> bool:
+        if not isinstance(value, bool):
+            raise _wrong_type("true or false", value)
+        return value
+
+    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+        """Return the boolean type."""
+        return {"type": "boolean"}
+
+
+class Text(StrictField):
+    """A JSON string that matches a pattern (linear-time, anchored)."""
+
+    def __init__(self, pattern: str = NAME_PATTERN, wanted: str = "", **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.pattern = pattern
+        self.wanted = wanted or "1 to 80 characters without control characters are allowed"
+        self._match = re.compile(pattern).fullmatch
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> str:
+        if not isinstance(value, str):
+            raise _wrong_type("a string", value)
+        if self._match(value) is None:
+            raise ValidationError(message("bad-text", f"found {clip(value)!r}; {self.wanted}"))
+        return value
+
+    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+        """Return the string type and its pattern."""
+        return {"type": "string", "pattern": self.pattern}
+
+
+class Choice(StrictField):
+    """One of a few strings."""
+
+    def __init__(self, *choices: str, **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.choices = choices
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> str:
+        if value not in self.choices or not isinstance(value, str):
+            found = repr(clip(value)) if isinstance(value, str) else kind_of(value)
+            raise ValidationError(
+                message("not-a-choice", f"found {found}; allowed: {', '.join(self.choices)}")
+            )
+        return value
+
+    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+        """Return the enumeration."""
+        return {"type": "string", "enum": list(self.choices)}
+
+
+class List(StrictField):
+    """A JSON array of one kind of thing."""
+
+    def __init__(
+        self, each: fields.Field[Any], *, at_least: int = 1, at_most: int, **kwargs: Any
+    ) -> None:
+        super().__init__(**kwargs)
+        self.each, self.at_least, self.at_most = each, at_least, at_most
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> list[Any]:
+        if not isinstance(value, list):
+            raise _wrong_type("an array", value)
+        if not self.at_least <= len(value) <= self.at_most:
+            raise ValidationError(
+                message(
+                    "wrong-length",
+                    f"found {len(value)} entries; allowed: {self.at_least} to {self.at_most}",
+                )
+            )
+        return _each(dict(enumerate(value)), self.each, value, lambda done: list(done.values()))
+
+    def published(self, convert: Converter) -> Published:
+        """Return the array and what it holds."""
+        return {
+            "type": "array",
+            "items": convert(self.each),
+            "minItems": self.at_least,
+            "maxItems": self.at_most,
+        }
+
+
+class Map(StrictField):
+    """A JSON object from the caller's own names to one kind of thing.
+
+    Faults stand under the caller's name, so that the pointer is the one in the
+    document.
+    """
+
+    def __init__(
+        self,
+        each: fields.Field[Any],
+        *,
+        at_least: int = 1,
+        at_most: int = MAX_SUBSTANCES,
+        **kwargs: Any,
+    ) -> None:
+        super().__init__(**kwargs)
+        self.each, self.at_least, self.at_most = each, at_least, at_most
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> dict[str, Any]:
+        if not isinstance(value, dict):
+            raise _wrong_type("an object", value)
+        if not self.at_least <= len(value) <= self.at_most:
+            raise ValidationError(
+                message(
+                    "wrong-length",
+                    f"found {len(value)} members; allowed: {self.at_least} to {self.at_most}",
+                )
+            )
+        bad = {name: [_bad_name(name)] for name in value if not _good_name(name)}
+        if bad:
+            raise ValidationError(bad)  # type: ignore[arg-type]
+        return _each(value, self.each, value, lambda done: done)
+
+    def published(self, convert: Converter) -> Published:
+        """Return the object, its names and what stands under them."""
+        return {
+            "type": "object",
+            "additionalProperties": convert(self.each),
+            "propertyNames": {"type": "string", "pattern": NAME_PATTERN},
+            "minProperties": self.at_least,
+            "maxProperties": self.at_most,
+        }
+
+
+@lru_cache(maxsize=4096)
+def _good_name(name: str) -> bool:
+    return re.fullmatch(NAME_PATTERN, name) is not None
+
+
+def _bad_name(name: str) -> Message:
+    return message(
+        "bad-text",
+        f"found the name {clip(name)!r}; names are 1 to {MAX_NAME_LENGTH} characters long"
+        " and have no control characters",
+    )
+
+
+def _each(
+    items: Mapping[Any, Any],
+    field: fields.Field[Any],
+    data: Any,
+    collect: Callable[[dict[Any, Any]], Any],
+) -> Any:
+    done: dict[Any, Any] = {}
+    faults: dict[Any, Any] = {}
+    for name, item in items.items():
+        try:
+            done[name] = field.deserialize(item, name, data)
+        except ValidationError as error:
+            faults[name] = error.messages
+    if faults:
+        raise ValidationError(faults)  # type: ignore[arg-type]
+    return collect(done)
+
+
+class UncertainSchema(ClosedSchema):
+    """The object form of a quantity."""
+
+    requires = ', such as {"value": 12.5, "unit": "kmol/h"}'
+
+    value = Number(required=True)
+    unit = Text(
+        pattern=r"^[^\x00-\x1f]{0,40}$",
+        wanted=f"a unit is at most {MAX_UNIT_LENGTH} characters long",
+        metadata=describe("Left out: the quantity is dimensionless."),
+    )
+    u = fields.Raw(
+        metadata=describe(
+            "Standard uncertainty, a difference: a number in the unit of the value, or a"
+            " quantity of the same kind. 0 is exact."
+        )
+    )
+    u_rel = Number(
+        at_least=0, at_most=10, metadata=describe("Standard uncertainty over the value.")
+    )
+    u_shared = Number(
+        at_least=0,
+        metadata=describe(
+            "Standard uncertainty, in the unit of the value, of the part that is constant over a"
+            " series and common to readings of the same instrument."
+        ),
+    )
+    instrument = Text(metadata=describe("Name of the instrument that gave the reading."))
+
+
+class LimitSchema(ClosedSchema):
+    """A reading that is a limit: a non-detect or an off-scale value."""
+
+    below = fields.Raw(metadata=describe("The value lies between 0 and this limit."))
+    above = fields.Raw(metadata=describe("The value lies above this limit."))
+
+
+_uncertain = UncertainSchema()
+
+
+class Quantity(StrictField):
+    """A number with a unit: ``"12.5 kmol/h"``, an object, or a bare dimensionless number.
+
+    With ``reading`` the limits of an analyser are understood too (``"<0.05 %"``).
+    """
+
+    def __init__(self, *, reading: bool = False, **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.reading = reading
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> RawQuantity:
+        if isinstance(value, str):
+            return parse_quantity(value, self.reading)
+        if isinstance(value, int | float) and not isinstance(value, bool):
+            check_magnitude(value)
+            return RawQuantity(float(value))
+        if not isinstance(value, dict):
+            raise _wrong_type('a quantity such as "12.5 kmol/h"', value)
+        if self.reading and ("below" in value or "above" in value) and "value" not in value:
+            return _limit(value)
+        loaded: dict[str, Any] = _uncertain.load(value)
+        return _uncertain_quantity(loaded)
+
+    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+        """Return a reference to the shared component."""
+        return {"$ref": f"#/components/schemas/{'Reading' if self.reading else 'Quantity'}"}
+
+
+def _uncertain_quantity(loaded: dict[str, Any]) -> RawQuantity:
+    if "u" in loaded and "u_rel" in loaded:
+        raise ValidationError(
+            {"u_rel": [message("conflicting-fields", "state u or u_rel, not both")]}  # type: ignore[arg-type]
+        )
+    u, u_unit = loaded.pop("u", None), None
+    if u is not None:
+        try:
+            difference = Quantity().deserialize(u)
+        except ValidationError as error:
+            raise ValidationError({"u": error.messages}) from None  # type: ignore[arg-type]
+        if isinstance(u, dict) or difference.value < 0:
+            wanted = "u is a number at or above 0, or a quantity such as \"0.5 K\""
+            raise ValidationError({"u": [message("out-of-range", wanted)]})  # type: ignore[arg-type]
+        u, u_unit = difference.value, None if isinstance(u, int | float) else difference.unit
+    loaded["unit"] = loaded.get("unit", "").strip() or "1"
+    return RawQuantity(u=u, u_unit=u_unit, **loaded)
+
+
+def _limit(value: dict[str, Any]) -> RawQuantity:
+    loaded = LimitSchema().load(value)
+    if len(loaded) != 1:
+        raise ValidationError(message("conflicting-fields", "state below or above, not both"))
+    bound, limit = next(iter(loaded.items()))
+    try:
+        quantity = Quantity().deserialize(limit)
+    except ValidationError as error:
+        raise ValidationError({bound: error.messages}) from None  # type: ignore[arg-type]
+    return RawQuantity(quantity.value, quantity.unit, bound=bound)
+
+
+class OneOf(StrictField):
+    """A value whose form is told by its JSON type or by a field that only it has.
+
+    Parameters
+    ----------
+    forms : Mapping[str, Field]
+        By ``"string"`` or ``"number"`` for these JSON types; by the name of a
+        field for an object that has it; ``"otherwise"`` for the rest.
+    """
+
+    def __init__(self, forms: Mapping[str, fields.Field[Any]], **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.forms = dict(forms)
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> Any:
+        forms = self.forms
+        if isinstance(value, dict):
+            for name, field in forms.items():
+                if name in value:
+                    return field.deserialize(value, attr, data)
+        elif isinstance(value, str) and "string" in forms:
+            return forms["string"].deserialize(value, attr, data)
+        elif isinstance(value, list) and "array" in forms:
+            return forms["array"].deserialize(value, attr, data)
+        if "otherwise" in forms:
+            return forms["otherwise"].deserialize(value, attr, data)
+        raise _wrong_type(f"one of these forms ({', '.join(forms)})", value)
+
+    def published(self, convert: Converter) -> Published:
+        """Return the alternatives."""
+        return {"anyOf": [convert(field) for field in self.forms.values()]}
+
+
+class Tagged(StrictField):
+    """An object whose form is told by a discriminator field such as ``kind``."""
+
+    def __init__(self, tag: str, forms: Mapping[str, type[Schema]], **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        self.tag = tag
+        self.forms = {name: form() for name, form in forms.items()}
+        self.nested = [fields.Nested(form) for form in dict.fromkeys(forms.values())]
+
+    def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> Any:
+        if not isinstance(value, dict):
+            raise _wrong_type("an object", value)
+        allowed = f"allowed: {', '.join(self.forms)}"
+        if self.tag not in value:
+            text = f"the field {self.tag!r} is required and was not sent; {allowed}"
+            raise ValidationError({self.tag: [message("missing-field", text)]})  # type: ignore[arg-type]
+        name = value[self.tag]
+        if not isinstance(name, str) or name not in self.forms:
+            found = repr(clip(name)) if isinstance(name, str) else kind_of(name)
+            text = f"found {found}; {allowed}"
+            raise ValidationError({self.tag: [message("not-a-choice", text)]})  # type: ignore[arg-type]
+        return self.forms[name].load(value)
+
+    def published(self, convert: Converter) -> Published:
+        """Return the alternatives, one for each form."""
+        return {"oneOf": [convert(field) for field in self.nested]}
+
+
+def quantity_components() -> dict[str, Published]:
+    """Return the JSON Schemas of the quantity in its forms, to be shared by reference."""
+    uncertain: Published = {"$ref": "#/components/schemas/Uncertain"}
+    bare = {"type": "number", "minimum": -LARGEST, "maximum": LARGEST}
+    return {
+        "Quantity": {
+            "description": "A number with a unit: a string, an object that may carry an"
+            " uncertainty, or a bare number where the quantity is dimensionless.",
+            "anyOf": [
+                bare,
+                {"type": "string", "pattern": QUANTITY_PATTERN, "maxLength": 80},
+                uncertain,
+            ],
+        },
+        "Reading": {
+            "description": "A quantity, or the limit that an analyser gave instead of one.",
+            "anyOf": [
+                bare,
+                {"type": "string", "pattern": READING_PATTERN, "maxLength": 80},
+                uncertain,
+                {"$ref": "#/components/schemas/Limit"},
+            ],
+        },
+    }
+
+
+__all__ = [
+    "MAX_SUBSTANCES",
+    "NUMBER_PATTERN",
+    "UNIT_PATTERN",
+    "Choice",
+    "Flag",
+    "LimitSchema",
+    "List",
+    "Map",
+    "Number",
+    "OneOf",
+    "Quantity",
+    "StrictField",
+    "Tagged",
+    "Text",
+    "UncertainSchema",
+    "describe",
+    "quantity_components",
+]

@@ -1,0 +1,151 @@
+"""Shape faults: a document that breaks the published schema.
+
+Marshmallow collects every fault as text in a tree that mirrors the document.
+The texts here are strings that also carry a code of the catalogue, so that the
+tree flattens to one fault per place, each with its JSON Pointer.
+"""
+
+from __future__ import annotations
+
+import difflib
+from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import Any, ClassVar
+
+from marshmallow import RAISE, Schema, ValidationError
+
+
+class Message(str):
+    """The text of a shape fault, and its code."""
+
+    __slots__ = ("allowed", "code")
+    code: str
+    allowed: tuple[str, ...]
+
+
+def message(code: str, text: str, allowed: tuple[str, ...] = ()) -> Message:
+    """Return ``text`` that carries ``code``."""
+    made = Message(text)
+    made.code, made.allowed = code, allowed
+    return made
+
+
+@dataclass(frozen=True)
+class LocatedFault:
+    """One fault and where in the request it stands: exactly one locator.
+
+    ``locator`` is ``pointer``, ``line``, ``row``, ``parameter`` or ``header``;
+    ``place`` its value.
+    """
+
+    code: str
+    detail: str
+    place: str
+    locator: str = "pointer"
+
+
+class RequestError(Exception):
+    """A request that is not answered; ``faults`` says why, all of it."""
+
+    def __init__(self, faults: tuple[LocatedFault, ...]) -> None:
+        super().__init__(faults)
+        self.faults = faults
+
+
+class ShapeError(RequestError):
+    """The document breaks the published schema: the caller's programming error."""
+
+
+class MeaningError(RequestError):
+    """The document obeys the schema and still cannot be computed."""
+
+
+def token(name: object) -> str:
+    """Return a reference token of a JSON Pointer (RFC 6901)."""
+    return str(name).replace("~", "~0").replace("/", "~1")
+
+
+def child(pointer: str, *names: object) -> str:
+    """Return the pointer of what stands under ``pointer`` by these names."""
+    return pointer + "".join(f"/{token(name)}" for name in names)
+
+
+def kind_of(value: object) -> str:
+    """Return the JSON type of a parsed value, as a caller knows it."""
+    if value is None:
+        return "null"
+    if isinstance(value, bool):
+        return "a boolean"
+    if isinstance(value, int | float):
+        return "a number"
+    if isinstance(value, str):
+        return "a string"
+    return "an array" if isinstance(value, list) else "an object"
+
+
+class ClosedSchema(Schema):
+    """A request object: fields not named are refused, with the nearest known one."""
+
+    class Meta:
+        """Marshmallow's settings."""
+
+        unknown = RAISE
+
+    requires: ClassVar[str] = ""
+
+    def __init__(self, **kwargs: Any) -> None:
+        super().__init__(**kwargs)
+        names = tuple(field.data_key or name for name, field in self.fields.items())
+        self.error_messages = {
+            "unknown": message("unknown-field", "", names),
+            "type": message("wrong-type", f"an object is needed here{self.requires}"),
+        }
+        for name, field in self.fields.items():
+            required = f"the field {field.data_key or name!r} is required and was not sent"
+            null = "null is not a value here; leave the field out or give it a value"
+            field.error_messages = {
+                **field.error_messages,
+                "required": message("missing-field", required),
+                "null": message("wrong-type", null),
+            }
+
+
+def load(schema: Schema, document: object) -> dict[str, Any]:
+    """Return the document as the schema reads it.
+
+    Raises
+    ------
+    ShapeError
+        With every fault found.
+    """
+    try:
+        loaded: dict[str, Any] = schema.load(document)  # type: ignore[arg-type]
+    except ValidationError as error:
+        faults = sorted(_flatten(error.messages, ""), key=lambda fault: fault.place)
+        raise ShapeError(tuple(faults)) from None
+    return loaded
+
+
+def _flatten(tree: object, pointer: str) -> Iterator[LocatedFault]:
+    if isinstance(tree, dict):
+        for name, below in tree.items():
+            # Marshmallow files a fault of the object itself under this name.
+            place = pointer if name == "_schema" else child(pointer, name)
+            yield from _flatten(below, place)
+    elif isinstance(tree, list):
+        for item in tree:
+            yield from _flatten(item, pointer)
+    else:
+        text = str(tree)
+        code = getattr(tree, "code", "wrong-type")
+        if code == "unknown-field":
+            text = _unknown_field(pointer, tree.allowed)  # type: ignore[attr-defined]
+        yield LocatedFault(code, text, pointer)
+
+
+def _unknown_field(pointer: str, allowed: tuple[str, ...]) -> str:
+    name = pointer.rpartition("/")[2].replace("~1", "/").replace("~0", "~")
+    near = difflib.get_close_matches(name[:80], allowed, n=1)
+    hint = f"; did you mean {near[0]!r}?" if near else ""
+    return f"no field {name[:80]!r} is known here{hint} Allowed: {', '.join(sorted(allowed))}."
+
