@@ -333,6 +333,8 @@ def _unit(text: str, factors: list[Factor]) -> Unit:
         ]
     if not _SMALLEST < exact < _LARGEST or not _SMALLEST < rest < _LARGEST:
         raise NotAUnit("it is too large or too small to calculate with")
+    if exponents == [0, 0, 0, 1, 0] and any(_TABLE[name].row.offset for name in powers):
+        raise NotAUnit("a temperature with a zero of its own stands alone; in a product write K")
     basis = _basis(factors) if not any(exponents) else _own_basis(factors)
     factor = float(exact) * rest
     shown = text if factors else "1"

@@ -581,6 +581,8 @@ def test_prefixes_make_no_unit_that_nobody_meant():
         "m^(1/0)",
         "m^x",
         "mol%^2",
+        "degC m/m",
+        "1/degF^-1",
         "1/mol%",
         "mol% wt%",
         "mol/(s kgf/cm2 a)",
