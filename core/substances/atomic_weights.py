@@ -122,10 +122,42 @@ ATOMIC_WEIGHTS: dict[str, Fraction] = {
 """g/mol, by symbol; D and T are deuterium and tritium."""
 
 WITHOUT_STANDARD_WEIGHT: frozenset[str] = frozenset(
-    (
-        "Tc Pm Po At Rn Fr Ra Ac Np Pu Am Cm Bk Cf Es Fm Md No Lr Rf Db Sg Bh Hs Mt Ds Rg Cn "
-        "Nh Fl Mc Lv Ts Og"
-    ).split()
+    {
+        "Tc",
+        "Pm",
+        "Po",
+        "At",
+        "Rn",
+        "Fr",
+        "Ra",
+        "Ac",
+        "Np",
+        "Pu",
+        "Am",
+        "Cm",
+        "Bk",
+        "Cf",
+        "Es",
+        "Fm",
+        "Md",
+        "No",
+        "Lr",
+        "Rf",
+        "Db",
+        "Sg",
+        "Bh",
+        "Hs",
+        "Mt",
+        "Ds",
+        "Rg",
+        "Cn",
+        "Nh",
+        "Fl",
+        "Mc",
+        "Lv",
+        "Ts",
+        "Og",
+    }
 )
 """Elements that exist and have no standard atomic weight."""
 
@@ -159,7 +191,7 @@ def atomic_weight(symbol: str, subject: Subject = ()) -> float:
 
     References
     ----------
-    Prohaska et al. 2022, table 1 and the abridged values of table 2.
+    Prohaska et al. 2022 (see the module).
     """
     require_weight(symbol, subject)
     return float(ATOMIC_WEIGHTS[symbol] / 1000)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Literal
 
@@ -22,7 +22,8 @@ class Formula:
         Elementary charges.
     """
 
-    elements: Mapping[str, Fraction]
+    # The charge and what holds the formula are hash enough; a mapping has none.
+    elements: Mapping[str, Fraction] = field(hash=False)
     charge: int = 0
 
 
@@ -33,7 +34,8 @@ class Substance:
     Attributes
     ----------
     name : str
-        As the caller writes it in equations and streams.
+        As the caller writes it in equations and streams. A state of aggregation
+        behind it, as in ``H2O(l)``, is part of it only where it is declared so.
     molar_mass : float
         kg/mol.
     formula : Formula or None
