@@ -1,0 +1,3 @@
+from service.command_line import main
+
+main(prog_name="molwright")

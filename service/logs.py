@@ -1,0 +1,161 @@
+"""The log: one JSON object a line on standard output, and nothing else there.
+
+Requests, the web server's own messages, warnings and tracebacks take the same
+way out. A line never holds a word of a request's body, path or query.
+"""
+
+from __future__ import annotations
+
+import logging
+import os
+import random
+import re
+import time
+from collections.abc import Iterable, Mapping, MutableMapping
+from datetime import UTC, datetime
+from typing import TYPE_CHECKING, Any
+
+import flask
+import orjson
+import structlog
+
+if TYPE_CHECKING:
+    from _typeshed.wsgi import StartResponse, WSGIApplication, WSGIEnvironment
+
+REQUEST_ID = re.compile(r"[A-Za-z0-9._-]{1,64}")
+"""What a caller may send as X-Request-ID; anything else is replaced."""
+
+_STANDARD_OUTPUT = 1
+
+
+class _Output:
+    """Writes a line with one system call, so that lines of several processes stay whole.
+
+    It writes to the descriptor, not to ``sys.stdout``: no buffer to flush, no
+    lock to hold over a fork.
+    """
+
+    def _write(self, line: bytes) -> None:
+        # An answer is worth more than its log line: a full disk or a reader
+        # that went away must not turn a good answer into a failure.
+        try:
+            os.write(_STANDARD_OUTPUT, line)
+        except OSError:
+            return
+
+    debug = info = warning = error = critical = _write
+
+
+def _arrange(_logger: object, level: str, fields: MutableMapping[str, Any]) -> Mapping[str, Any]:
+    now = datetime.now(UTC).isoformat(timespec="milliseconds")
+    return {"time": now, "level": level, "event": fields.pop("event"), **fields}
+
+
+def _render(_logger: object, _level: str, fields: Mapping[str, Any]) -> bytes:
+    return orjson.dumps(fields, default=str, option=orjson.OPT_APPEND_NEWLINE)
+
+
+def logger(level: int = logging.INFO) -> Any:
+    """Return a logger whose lines of at least ``level`` reach standard output."""
+    return structlog.wrap_logger(
+        _Output(),
+        processors=[_arrange, structlog.processors.format_exc_info, _render],
+        wrapper_class=structlog.make_filtering_bound_logger(level),
+        cache_logger_on_first_use=True,
+    ).bind()
+
+
+class _Handler(logging.Handler):
+    """Sends the records of the standard library's loggers the same way."""
+
+    def __init__(self, level: int) -> None:
+        super().__init__()
+        self._logger = logger(level)
+
+    def emit(self, record: logging.LogRecord) -> None:
+        try:
+            extra: dict[str, Any] = {}
+            if flask.has_request_context():
+                line = flask.request.environ.get(_LINE, {})
+                extra["request_id"] = line.get("request_id")
+            if record.exc_info:
+                extra["exc_info"] = record.exc_info
+            self._logger.log(
+                record.levelno,
+                record.getMessage(),
+                logger=record.name,
+                pid=record.process,
+                **extra,
+            )
+        except Exception:
+            self.handleError(record)
+
+
+def configure(level: str) -> None:
+    """Send everything this process logs to standard output, from ``level`` up."""
+    threshold = logging.getLevelNamesMapping()[level.upper()]
+    logging.basicConfig(level=threshold, handlers=[_Handler(threshold)], force=True)
+    logging.captureWarnings(capture=True)
+
+
+def new_request_id() -> str:
+    """Return a name for a request that brought none; the workers' generators are seeded apart."""
+    return f"{random.getrandbits(96):024x}"
+
+
+_LINE = "molwright.log_line"
+"""Where the WSGI environment holds the line in the making."""
+
+
+def annotate(**fields: str) -> None:
+    """Add ``fields`` to the log line of the request at hand: a digest, an error code."""
+    flask.request.environ.setdefault(_LINE, {}).update(fields)
+
+
+class _RequestLog:
+    """WSGI in, WSGI out, and a line about what went through.
+
+    Hooks of the framework would cost twice as much and miss what fails outside them.
+    """
+
+    def __init__(self, application: WSGIApplication) -> None:
+        self._application = application
+        log = logger()
+        self._routine, self._failed = log.info, log.error
+
+    def __call__(self, environ: WSGIEnvironment, start_response: StartResponse) -> Iterable[bytes]:
+        began = time.perf_counter_ns()
+        request_id = environ.get("HTTP_X_REQUEST_ID", "")
+        if not REQUEST_ID.fullmatch(request_id):
+            request_id = new_request_id()
+        line = environ[_LINE] = {
+            "request_id": request_id,
+            "method": environ["REQUEST_METHOD"],
+            "route": None,
+            "status": 500,
+            "milliseconds": 0.0,
+        }
+
+        def start(status: str, headers: list[tuple[str, str]], *exc_info: Any) -> Any:
+            # The framework leaves its request here until the answer is under way.
+            request = environ.get("werkzeug.request")
+            if request is not None and request.url_rule is not None:
+                line["route"] = request.url_rule.rule
+            line["status"] = int(status[:3])
+            headers.append(("X-Request-ID", request_id))
+            return start_response(status, headers, *exc_info)
+
+        try:
+            return self._application(environ, start)
+        finally:
+            line["milliseconds"] = round((time.perf_counter_ns() - began) / 1e6, 3)
+            (self._routine if line["status"] < 500 else self._failed)("request", **line)
+
+
+def log_requests(app: flask.Flask) -> None:
+    """Have ``app`` write one line for each request and give each an id.
+
+    The id is the caller's X-Request-ID if :data:`REQUEST_ID` matches it, else
+    a new one; the answer carries it back.
+    """
+    app.wsgi_app = _RequestLog(app.wsgi_app)  # type: ignore[method-assign]

@@ -1,0 +1,193 @@
+"""The server as a client, a load balancer and an operator meet it."""
+
+import concurrent.futures
+import http.client
+import itertools
+import re
+import signal
+import socket
+import threading
+import time
+
+import pytest
+
+pytestmark = pytest.mark.live
+
+PATH = "/v1/stoichiometric-table"
+"""A route that reads a body; what is asked of it here is refused, quickly."""
+
+
+def test_it_is_alive_and_ready(server):
+    assert server.get("/healthz").json()["status"] == "alive"
+    assert server.get("/readyz").json()["status"] == "ready"
+
+
+def test_it_does_not_say_which_server_it_is(server):
+    headers = server.get("/healthz").headers
+    assert headers["Server"] is None
+    assert "gunicorn" not in str(headers).lower()
+    assert "werkzeug" not in str(headers).lower()
+
+
+@pytest.mark.parametrize("name", ["a", "K-410_night.7", "x" * 64])
+def test_a_request_id_comes_back(server, name):
+    assert server.get("/healthz", **{"X-Request-ID": name}).headers["X-Request-ID"] == name
+
+
+@pytest.mark.parametrize("name", ["", "x" * 65, "a b", "{}", "ü"])
+def test_an_unfit_request_id_is_replaced(server, name):
+    given = server.get("/healthz", **{"X-Request-ID": name}).headers["X-Request-ID"]
+    assert re.fullmatch("[0-9a-f]{24}", given)
+
+
+def test_every_request_is_a_line_of_the_log(server):
+    sent = "log-line.1"
+    answer = server.post(f"{PATH}?secret=query", {"secret": "body"}, **{"X-Request-ID": sent})
+    line = server.logged(sent)
+    assert list(line)[:3] == ["time", "level", "event"]
+    assert re.fullmatch(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{3}\+00:00", line.pop("time"))
+    assert 0 < line.pop("milliseconds") < 10_000
+    assert line == {
+        "level": "info",
+        "event": "request",
+        "request_id": sent,
+        "method": "POST",
+        "route": PATH,
+        "status": answer.status,
+        "code": answer.problem()["type"].removeprefix("/problems/"),
+    }
+
+
+def test_an_unknown_route_is_a_problem_and_its_path_is_not_logged(server):
+    answer = server.get("/no/such/route", **{"X-Request-ID": "no-route"})
+    assert answer.status == 404
+    assert answer.problem()["type"] == "/problems/no-such-route"
+    line = server.logged("no-route")
+    assert (line["route"], line["status"], line["code"]) == (None, 404, "no-such-route")
+    assert "/no/such/route" not in str(line)
+
+
+HEAD = f"POST {PATH} HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n".encode()
+
+
+@pytest.mark.parametrize(
+    ("data", "status", "code"),
+    [
+        (b"GARBAGE\r\n\r\n", 400, "malformed-http"),
+        (b"\x16\x03\x01\x02\x00\x01\x00\x01\xfc\x03\x03\r\n\r\n", 400, "malformed-http"),  # TLS
+        (b"GET / HTTP/1.1\r\nHost: here\r\nno colon\r\n\r\n", 400, "malformed-http"),
+        (
+            b"GET / HTTP/1.1\r\nContent-Length: 1\r\nContent-Length: 2\r\n\r\n",
+            400,
+            "malformed-http",
+        ),
+        (b"GET /" + b"a" * 5000 + b" HTTP/1.1\r\n\r\n", 414, "request-line-too-long"),
+        (b"GET / HTTP/1.1\r\nX-A: " + b"a" * 9000 + b"\r\n\r\n", 431, "header-too-large"),
+        (b"GET / HTTP/1.1\r\n" + b"X-A: a\r\n" * 60 + b"\r\n", 431, "header-too-large"),
+        (b"GET / HTTP/1.1\r\nExpect: tea\r\n\r\n", 417, "expectation-failed"),
+        (HEAD + b"Transfer-Encoding: br\r\n\r\n", 501, "unsupported-transfer-coding"),
+        (HEAD + b"Transfer-Encoding: chunked\r\n\r\nZZ\r\n{}\r\n0\r\n\r\n", 400, "malformed-http"),
+        (HEAD + b"Transfer-Encoding: chunked\r\n\r\n2\r\n{}XX\r\n0\r\n\r\n", 400, "malformed-http"),
+    ],
+)
+def test_what_is_not_http_is_a_problem_too(server, data, status, code):
+    answer = server.raw(data)
+    assert answer.status == status
+    assert answer.problem()["type"] == f"/problems/{code}"
+    line = server.logged(answer.headers["X-Request-ID"])
+    assert (line["event"], line["status"], line["code"]) == ("request", status, code)
+
+
+def test_a_body_cut_short_leaves_no_trace_but_a_line(server):
+    with server.connect() as sock:
+        sock.sendall(HEAD + b"X-Request-ID: cut-short\r\nTransfer-Encoding: chunked\r\n\r\n9\r\n{")
+        sock.shutdown(socket.SHUT_WR)
+        assert b" 400 " in sock.recv(65536).splitlines()[0]
+    assert server.logged("cut-short")["code"] == "malformed-http"
+
+
+def test_a_body_that_is_too_large_is_refused(start_server):
+    with start_server("--workers", "1", "--max-body", "1000") as server:
+        for declared in (b"Content-Length: 1001\r\n\r\n", b"Content-Length: 99999999999\r\n\r\n"):
+            # Refused by its declaration: nothing of it need arrive.
+            answer = server.raw(HEAD + declared)
+            assert answer.status == 413
+            assert answer.problem()["type"] == "/problems/body-too-large"
+        assert server.post(PATH, b" " * 100_000).status == 413
+        chunk = b"190\r\n" + b" " * 0x190 + b"\r\n"
+        chunked = HEAD + b"Transfer-Encoding: chunked\r\n\r\n" + 3 * chunk + b"0\r\n\r\n"
+        assert server.raw(chunked).status == 413
+        assert server.post(PATH, b" " * 1000).status == 400
+
+
+def asking(server, stop, answers):
+    """Ask in a loop, each time on a new connection, until told to stop."""
+    while not stop.is_set():
+        try:
+            answers.append(server.get("/healthz").status)
+        except (OSError, http.client.HTTPException) as error:
+            answers.append(error)
+
+
+def test_a_reload_loses_nothing(start_server):
+    with start_server("--workers", "2") as server:
+        stop, answers = threading.Event(), []
+        askers = [threading.Thread(target=asking, args=(server, stop, answers)) for _ in range(4)]
+        for asker in askers:
+            asker.start()
+        before = {line["pid"] for line in server.log_lines() if "Booting" in line["event"]}
+        for _ in range(2):
+            time.sleep(0.4)
+            server.signal(signal.SIGHUP)
+        time.sleep(1)
+        stop.set()
+        for asker in askers:
+            asker.join()
+        booted = {line["pid"] for line in server.log_lines() if "Booting" in line["event"]}
+        assert len(booted - before) >= 2, "the workers were not replaced"
+        assert len(answers) > 50
+        assert set(answers) == {200}
+
+
+def test_a_stop_finishes_what_is_under_way(start_server):
+    with start_server("--workers", "1") as server:
+        with server.connect() as sock:
+            sock.sendall(HEAD + b"X-Request-ID: last\r\nContent-Length: 2\r\n\r\n{")
+            time.sleep(0.3)  # its thread waits for the rest
+            server.signal(signal.SIGTERM)
+            time.sleep(0.3)
+            sock.sendall(b"}")
+            with http.client.HTTPResponse(sock) as answer:
+                answer.begin()
+                assert answer.status == 400
+                assert answer.read().endswith(b"}\n")
+        assert server.exit_code() == 0
+        assert server.logged("last")["status"] == 400
+        with pytest.raises(ConnectionRefusedError):
+            server.connect()
+
+
+def test_slow_clients_do_not_keep_good_ones_waiting(start_server):
+    # All but one of the threads held by clients that send a byte now and then.
+    with start_server("--workers", "1", "--threads", "16") as server:
+        slow = [server.connect() for _ in range(15)]
+        for number, sock in enumerate(slow):
+            # Some stop in the header, some in the body, some before a word.
+            sock.sendall([HEAD[:20], HEAD + b"Content-Length: 100\r\n\r\n{", b""][number % 3])
+        took = []
+        for _ in range(20):
+            began = time.monotonic()
+            assert server.get("/healthz").status == 200
+            took.append(time.monotonic() - began)
+            for sock, byte in zip(slow, itertools.cycle(b"  "), strict=False):
+                if sock is not slow[2]:
+                    sock.sendall(bytes([byte]))
+        assert max(took) < 2
+        for sock in slow:
+            sock.close()
+
+
+def test_many_clients_at_once_are_all_answered(server):
+    with concurrent.futures.ThreadPoolExecutor(32) as pool:
+        answers = list(pool.map(lambda _: server.get("/healthz").status, range(320)))
+    assert answers == [200] * 320
