@@ -7,15 +7,529 @@ from here; the service adds the HTTP status and a page for each.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from typing import NamedTuple
 
 
-@dataclass(frozen=True)
-class Entry:
+class Entry(NamedTuple):
     """Title and explanation of one code."""
 
     title: str
     text: str
 
 
-CATALOGUE: dict[str, Entry] = {}
+_READING_A_REQUEST: dict[str, Entry] = {
+    "not-json": Entry(
+        "Not JSON",
+        "The body is not a JSON document (RFC 8259). The detail says where reading stopped; NaN,"
+        " Infinity and numbers beyond the range of a double are no JSON either.",
+    ),
+    "too-deep": Entry(
+        "Nested too deep",
+        "The document nests deeper than any request of this service needs. Send the document that"
+        " the contract describes.",
+    ),
+    "duplicate-name": Entry(
+        "Name stated twice",
+        "One object of the document has the same member twice, so that it is not clear which is"
+        " meant. Remove one of them.",
+    ),
+    "document-breaks-schema": Entry(
+        "The document breaks the contract",
+        "Several faults of shape were found; each is listed under 'errors' with its place. The"
+        " contract is served at /v1/openapi.json.",
+    ),
+    "unknown-field": Entry(
+        "Unknown field",
+        "An object has a member that the contract does not know. Correct its name, or leave it"
+        " out: nothing is ignored silently.",
+    ),
+    "missing-field": Entry(
+        "Missing field",
+        "An object lacks a member that the contract requires. Add it.",
+    ),
+    "wrong-type": Entry(
+        "Wrong type",
+        "A value has another JSON type than the contract says. Numbers are not written as"
+        " strings, and null is not a value unless the contract says so.",
+    ),
+    "wrong-length": Entry(
+        "Wrong number of entries",
+        "An array or object has fewer or more entries than allowed. Split the request, or complete"
+        " it.",
+    ),
+    "not-a-choice": Entry(
+        "Not one of the choices",
+        "A string is none of those allowed here. Choose one of the list in the detail.",
+    ),
+    "bad-text": Entry(
+        "Text not allowed here",
+        "A string does not have the form needed here. The detail says which form.",
+    ),
+    "not-a-quantity": Entry(
+        "Not a quantity",
+        "A string does not start with a number that a unit follows. Write it as '12.5 kmol/h', or"
+        " as an object with 'value' and 'unit'.",
+    ),
+    "out-of-range": Entry(
+        "Number out of range",
+        "A number lies outside the range that the contract allows. The detail says the range.",
+    ),
+    "unknown-parameter": Entry(
+        "Unknown query parameter",
+        "The query has a parameter, or a value of one, that this route does not know. The detail"
+        " says what is allowed.",
+    ),
+}
+
+_HTTP: dict[str, Entry] = {
+    "no-such-route": Entry(
+        "No such route",
+        "Nothing is served under this path. GET / lists the routes.",
+    ),
+    "method-not-allowed": Entry(
+        "Method not allowed",
+        "The route exists and does not take this method. The Allow header says which it takes.",
+    ),
+    "not-acceptable": Entry(
+        "No form that the client accepts",
+        "The Accept header names no media type in which this route answers. The detail says which"
+        " it offers.",
+    ),
+    "unsupported-media-type": Entry(
+        "Body not declared as JSON",
+        "Calculations take JSON. Send the header 'Content-Type: application/json'.",
+    ),
+    "body-too-large": Entry(
+        "Body too large",
+        "The body is larger than this service reads. Split the request.",
+    ),
+    "malformed-http": Entry(
+        "Malformed HTTP",
+        "The request does not obey HTTP/1.1 and was not read. Use an HTTP client library.",
+    ),
+    "request-line-too-long": Entry(
+        "Request line too long",
+        "The path and query are longer than this service reads. What is to be computed goes into"
+        " the body.",
+    ),
+    "header-too-large": Entry(
+        "Header too large",
+        "The request's headers are more, or longer, than this service reads. Send fewer or shorter"
+        " ones.",
+    ),
+    "unsupported-transfer-coding": Entry(
+        "Transfer coding not supported",
+        "The body came in a transfer coding that this service does not read. Send it with"
+        " Content-Length or chunked.",
+    ),
+    "expectation-failed": Entry(
+        "Expectation failed",
+        "The Expect header asks for something that this service does not do. Leave it out.",
+    ),
+    "internal-error": Entry(
+        "Fault of the service",
+        "The service failed in a way that it should not. Report the request and the X-Request-ID"
+        " of the answer.",
+    ),
+}
+
+_QUANTITIES: dict[str, Entry] = {
+    "cannot-be-computed": Entry(
+        "The request cannot be computed",
+        "The document obeys the contract and several things in it stand against computing an"
+        " answer; each is listed under 'errors' with its place.",
+    ),
+    "unknown-unit": Entry(
+        "Unknown unit",
+        "The text is not a unit that is known here, or could be read in more than one way. Use"
+        " one of the spellings that the detail names; the case of letters matters, and several"
+        " factors after a slash need brackets.",
+    ),
+    "wrong-dimension": Entry(
+        "Wrong kind of quantity",
+        "The unit belongs to another kind of quantity than the field takes. The detail says which"
+        " kinds are allowed.",
+    ),
+    "unit-not-allowed": Entry(
+        "Unit not allowed here",
+        "A gauge unit, or one with a zero of its own, stands where an absolute unit or a"
+        " difference is meant. Use the unit that the detail names.",
+    ),
+    "unit-contradicts-basis": Entry(
+        "Unit contradicts the basis",
+        "The unit says mole, mass or volume, and the analysis states another basis. Correct one of"
+        " the two.",
+    ),
+    "impossible-value": Entry(
+        "Impossible value",
+        "No substance, stream or instrument has such a value: a flow below zero, an absolute"
+        " temperature or pressure not above zero, a fraction above one. Correct the reading.",
+    ),
+    "relative-uncertainty-of-offset-unit": Entry(
+        "Relative uncertainty of an offset unit",
+        "A share of a temperature in degC or of a gauge pressure depends on where the unit has its"
+        " zero. State 'u' as a difference instead.",
+    ),
+    "uncertainty-out-of-range": Entry(
+        "Uncertainty out of range",
+        "A standard uncertainty must be finite and not below zero. Correct it.",
+    ),
+    "conflicting-fields": Entry(
+        "Fields that exclude each other",
+        "Two fields say the same thing, or contradict each other. Leave one of them out.",
+    ),
+    "field-needed": Entry(
+        "Field needed here",
+        "With what else the request says, a field is needed that was not sent. Add it.",
+    ),
+    "field-not-used": Entry(
+        "Field without meaning here",
+        "With what else the request says, the field would have no effect. Leave it out.",
+    ),
+}
+
+_SUBSTANCES_AND_REACTIONS: dict[str, Entry] = {
+    "formula-not-understood": Entry(
+        "Formula not understood",
+        "The text cannot be read as a chemical formula, or can be read in two ways. Mend it at the"
+        " position named, using one of the spellings offered.",
+    ),
+    "unknown-element": Entry(
+        "Unknown element",
+        "A formula holds a symbol that no element has. Write symbols as in the periodic table, a"
+        " capital and at most one small letter.",
+    ),
+    "no-standard-atomic-weight": Entry(
+        "No standard atomic weight",
+        "All nuclides of this element are radioactive and their mixture differs from source to"
+        " source, so there is no standard value. State the molar mass of the substance.",
+    ),
+    "unknown-substance": Entry(
+        "Unknown substance",
+        "The name is not declared and cannot be read as a formula, or is none of the request's"
+        " substances. Declare it under 'species' with a formula or a molar mass.",
+    ),
+    "name-not-usable": Entry(
+        "Name not usable",
+        "A name has 1 to 80 printable characters and no white space at its ends. Choose another"
+        " name.",
+    ),
+    "name-clash": Entry(
+        "Two spellings of one name",
+        "Two spellings that differ only by a state of aggregation name one substance. Use one of"
+        " them, or declare both under 'species'.",
+    ),
+    "phase-contradicts": Entry(
+        "Phases contradict each other",
+        "One substance is stated to be in two phases. State one, or declare two substances with"
+        " names and phases of their own and the same formula.",
+    ),
+    "molar-mass-not-positive": Entry(
+        "Molar mass not positive",
+        "A molar mass must be finite and above zero. Correct the value or its unit.",
+    ),
+    "molar-mass-contradicts-formula": Entry(
+        "Molar mass contradicts the formula",
+        "The stated molar mass differs from that of the formula by more than 1 %. Correct one of"
+        " them, or state the molar mass alone.",
+    ),
+    "equation-not-understood": Entry(
+        "Equation not understood",
+        "The equation cannot be read at the position named. Write coefficients and names with"
+        " ' + ' between substances and one arrow (->, →, <=>, ⇌, =).",
+    ),
+    "unbalanced-reaction": Entry(
+        "Unbalanced reaction",
+        "The sides count different numbers of atoms or charges. Correct the coefficients; where"
+        " only one balanced form exists it is given.",
+    ),
+    "mass-not-conserved": Entry(
+        "Mass not conserved",
+        "The molar masses of the two sides differ by more than 0.5 %. Correct a coefficient or a"
+        " molar mass, or add what is missing.",
+    ),
+    "reaction-without-change": Entry(
+        "Reaction without change",
+        "Both sides hold the same substances in the same amounts. Correct the equation or leave it"
+        " out.",
+    ),
+    "duplicate-reaction-id": Entry(
+        "Reaction id used twice",
+        "Two reactions have the same id. Give each its own.",
+    ),
+    "unknown-reaction": Entry(
+        "Unknown reaction",
+        "No reaction of the request has this id. Ids default to r1, r2, ... by place.",
+    ),
+    "unknown-key": Entry(
+        "Unknown key reactant",
+        "The key is none of the request's substances. Name a reactant that the feed holds.",
+    ),
+    "key-absent": Entry(
+        "Key reactant not fed",
+        "The feed holds none of the key reactant, and the account counts per key fed. Name a"
+        " reactant that the feed holds, or state its flow.",
+    ),
+    "key-not-fed": Entry(
+        "No feed stream holds the key",
+        "The conversion counts what is fed of the key, and no feed stream can hold any. Choose a"
+        " substance of the feed, or state its flow.",
+    ),
+    "key-not-consumed": Entry(
+        "Key not consumed",
+        "No reaction as written consumes the key. Name a reactant as the key, or write the"
+        " reaction the other way round.",
+    ),
+}
+
+_STREAMS: dict[str, Entry] = {
+    "stream-form": Entry(
+        "Form of a stream",
+        "A stream states exactly one of: flows; amounts (a batch); flow with analysis;"
+        " concentrations with volumetric_flow (a batch: volume). State one of them.",
+    ),
+    "duplicate-id": Entry(
+        "Stream id used twice",
+        "Two streams have the same id. Give each its own.",
+    ),
+    "no-flow": Entry(
+        "Nothing flows",
+        "No substance of the stream's phase has a flow above zero. State what flows.",
+    ),
+    "flow-negative": Entry(
+        "Flow below zero",
+        "A flow of the feed is below zero. Correct the reading.",
+    ),
+    "meter-conditions-missing": Entry(
+        "Conditions at the gas meter missing",
+        "A volume of gas says how much it is only with the meter's own temperature and pressure,"
+        " which are never borrowed from the reactor. State 'meter', or the flow in Nm3/h, Sm3/h"
+        " or a molar unit.",
+    ),
+    "volume-contradicts-conditions": Entry(
+        "Volume contradicts temperature and pressure",
+        "Flows, volume, temperature and pressure of a gas are related by the gas law, and those"
+        " stated are not. Leave one out, or correct the one that is wrong.",
+    ),
+    "condition-missing": Entry(
+        "Condition missing",
+        "The answer depends on a temperature, pressure or volume that was not stated. State it.",
+    ),
+    "unused-lump": Entry(
+        "Lump without a value",
+        "A lump is declared and no value has its name. Correct the name, or leave the lump out.",
+    ),
+    "removed-substance-read": Entry(
+        "Removed substance has a value",
+        "A substance that is removed from the sample cannot be read in it. Leave out the removal"
+        " or the value.",
+    ),
+    "removal-residual": Entry(
+        "Residuals leave no sample",
+        "What the removals leave in the sample adds up to the whole of it or more. Correct the"
+        " residuals, or the conditions of saturation.",
+    ),
+    "vapour-pressure-missing": Entry(
+        "Vapour pressure not known",
+        "The packaged table has no such substance, no proven correlation for it, or its saturated"
+        " vapour is associated. State 'vapour_pressure' next to temperature and pressure.",
+    ),
+    "ambiguous-substance": Entry(
+        "Several substances have this composition",
+        "The composition fits several substances of the table, which are listed with their"
+        " registry numbers. Call the substance by one of these names, or state the value.",
+    ),
+    "outside-correlation": Entry(
+        "Outside the range of a correlation",
+        "The temperature lies outside the range in which the correlation holds. Correct it, or"
+        " state the value that is needed.",
+    ),
+    "liquid-volume-basis": Entry(
+        "Volume fractions of a liquid",
+        "Volume fractions of a liquid depend on densities of mixtures that are not known here."
+        " Give the analysis on mass or mole basis, or as concentrations.",
+    ),
+    "liquid-volume-of-substance": Entry(
+        "Volume of a substance in a liquid",
+        "The volume that one substance takes in a liquid is not known here. Give its flow by mass"
+        " or amount.",
+    ),
+    "liquid-concentration-removal": Entry(
+        "Concentrations after a removal",
+        "Taking a substance out of a liquid changes its volume in a way that is not known here."
+        " Give the analysis as fractions.",
+    ),
+}
+
+_MOLE_ACCOUNT: dict[str, Entry] = {
+    "conversions-or-extents": Entry(
+        "Conversions or extents",
+        "A table is asked for at conversions of the key or at extents of the reactions. State"
+        " exactly one of the two.",
+    ),
+    "conversion-not-enough": Entry(
+        "A conversion does not fix the extents",
+        "With several independent reactions one conversion can be reached in many ways. State the"
+        " extents.",
+    ),
+    "conversion-out-of-reach": Entry(
+        "Conversion out of reach",
+        "At such a conversion some substance would have a flow below zero. Stay within the limits"
+        " that the detail gives.",
+    ),
+    "extents-out-of-reach": Entry(
+        "Extents out of reach",
+        "These extents would leave a flow below zero, or run a one-way reaction backwards. State"
+        " others.",
+    ),
+    "extents-unbounded": Entry(
+        "Extents without bound",
+        "The reactions can run without limit and change nothing, so that limits of the conversion"
+        " cannot be found. State each conversion of matter once.",
+    ),
+    "pressure-follows": Entry(
+        "Pressure follows from the volume",
+        "A batch that holds its volume takes the pressure that follows. Leave the outlet pressure"
+        " out, or hold the pressure.",
+    ),
+    "phase-vanishes": Entry(
+        "Nothing is left in the phase",
+        "At such a conversion no substance is left in the stream's phase. State a smaller"
+        " conversion, or correct the phases of the substances.",
+    ),
+}
+
+_OUTLET_ANALYSIS: dict[str, Entry] = {
+    "under-determined": Entry(
+        "Readings do not settle the account",
+        "More is unknown than the readings say. The detail names what stays open and which further"
+        " reading would settle it.",
+    ),
+    "exact-readings-conflict": Entry(
+        "Exact readings contradict each other",
+        "Readings stated as exact (u = 0) cannot all be true. Give at least one of them an"
+        " uncertainty, or correct it.",
+    ),
+    "limit-out-of-range": Entry(
+        "Limit out of range",
+        "A detection limit or the end of an instrument's range must be above zero, and of a"
+        " fraction below one. Correct it.",
+    ),
+}
+
+_REACTORS: dict[str, Entry] = {
+    "one-reaction-only": Entry(
+        "One reaction only",
+        "This release sizes reactors for one reaction. Send the one that decides the size.",
+    ),
+    "feed-does-not-fit-reactor": Entry(
+        "Feed does not fit the reactor",
+        "A batch is charged with amounts, every other reactor is fed by flows. State the feed the"
+        " way that the reactor needs.",
+    ),
+    "rate-of-needed": Entry(
+        "Whose rate is it?",
+        "The substances of the reaction react at different rates, and a silent factor of two is"
+        " the classic mistake. Say in 'of' whose rate the law gives.",
+    ),
+    "rate-of-absent-substance": Entry(
+        "Rate of a substance that does not react",
+        "The law is said to give the rate of a substance that the reaction neither consumes nor"
+        " forms. Name one that it does.",
+    ),
+    "rate-constant-unit": Entry(
+        "Unit of the rate constant",
+        "The unit does not fit the orders and the driving quantity of the law. The detail says"
+        " the unit expected; check orders and unit.",
+    ),
+    "rate-constant-out-of-range": Entry(
+        "Rate constant beyond use",
+        "At this temperature the constant vanishes or overflows. Check its parameters, their units"
+        " and the temperature.",
+    ),
+    "equilibrium-constant-unit": Entry(
+        "Unit of the equilibrium constant",
+        "The unit does not fit the reaction as it is written. The detail says the units expected.",
+    ),
+    "equilibrium-constant-does-not-fit": Entry(
+        "Equilibrium constant does not fit",
+        "A constant of this kind says nothing about this reaction in this phase. Give it in the"
+        " kind that the detail names.",
+    ),
+    "driving-needs-gas": Entry(
+        "Partial pressures need a gas",
+        "The rate is driven by partial pressures and the feed is a liquid. Give the law in"
+        " concentrations or mole fractions.",
+    ),
+    "order-outside-phase": Entry(
+        "Order of a substance outside the phase",
+        "The law counts a substance that is not in the phase where the reaction runs. Leave its"
+        " order out, or put its amount into the constant.",
+    ),
+    "floor-without-negative-order": Entry(
+        "Floor without a negative order",
+        "A floor holds a rate that would grow without limit, which only a negative order does."
+        " Leave the floor out, or check the order.",
+    ),
+    "negative-order-needs-floor": Entry(
+        "Negative order needs a floor",
+        "Where a substance of negative order is absent the law has no value. State 'floor' for it.",
+    ),
+    "reaction-does-not-start": Entry(
+        "Reaction does not start",
+        "The rate at the feed is zero, since the law has a positive order in a substance that the"
+        " feed lacks. Feed some of it, or choose a stirred tank.",
+    ),
+    "target-form": Entry(
+        "Form of the target",
+        "A target is a conversion, or exactly one of flow, mole_fraction, concentration and yield"
+        " of a substance. State one.",
+    ),
+    "target-does-not-move": Entry(
+        "Target does not change with conversion",
+        "The quantity stays the same whatever the conversion. Name a substance that the reaction"
+        " makes or consumes.",
+    ),
+    "target-not-defined": Entry(
+        "Target not defined here",
+        "The quantity does not exist for this substance or cannot be known with this feed. The"
+        " detail says what to state instead.",
+    ),
+    "target-out-of-reach": Entry(
+        "Target out of reach",
+        "No reactor of this kind reaches the target: equilibrium or a substance that runs out"
+        " bounds it, as the detail says. Ask for less, or change the feed or conditions.",
+    ),
+    "integral-not-converged": Entry(
+        "Integral did not converge",
+        "The size is an integral that could not be computed to its tolerance. Check the rate law"
+        " for values beyond sense.",
+    ),
+    "root-not-bracketed": Entry(
+        "Solution not enclosed",
+        "An equation has no solution in the range in which one was expected. Check the request for"
+        " values beyond sense.",
+    ),
+    "root-not-converged": Entry(
+        "Solution did not converge",
+        "An equation could not be solved to its tolerance. Check the request for values beyond"
+        " sense.",
+    ),
+}
+
+CATALOGUE: dict[str, Entry] = {
+    **_READING_A_REQUEST,
+    **_HTTP,
+    **_QUANTITIES,
+    **_SUBSTANCES_AND_REACTIONS,
+    **_STREAMS,
+    **_MOLE_ACCOUNT,
+    **_OUTLET_ANALYSIS,
+    **_REACTORS,
+}
+
+BREAKS_CONTRACT = frozenset(_READING_A_REQUEST)
+"""Codes of a request that could not be read: the caller's programming error."""
+
+CARRIED_BY_HTTP = frozenset(_HTTP)
+"""Codes that HTTP has a status of its own for."""

@@ -12,10 +12,11 @@ import math
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass, field
+from functools import lru_cache
 from typing import Any
 
 from core.constants import STANDARD_ATMOSPHERE
-from core.dimensions import DIMENSIONS
+from core.dimensions import DIMENSIONS, Exponents
 from core.errors import Amount, Fact, Fault, Note, Refused, Subject
 from schemas.quantities import Bound, RawQuantity
 from schemas.shape import LocatedFault, MeaningError, child
@@ -74,6 +75,9 @@ class EdgeMap:
 
     places: Mapping[Subject, Place]
     scales: Mapping[str, Scale]
+    read_notes: tuple[Note, ...] = ()
+    read_assumed: tuple[Note, ...] = ()
+    """What reading the request found worth telling with the answer."""
 
     def place(self, subject: Subject) -> Place:
         """Return the place of the subject, or of the nearest thing that holds it."""
@@ -144,9 +148,7 @@ class EdgeMap:
         """Return the refusal told in the request's places and units."""
         return MeaningError(
             tuple(
-                LocatedFault(
-                    fault.code, self._sentence(fault), self.place(fault.subject).pointer
-                )
+                LocatedFault(fault.code, self._sentence(fault), self.place(fault.subject).pointer)
                 for fault in refused.faults
             )
         )
@@ -160,6 +162,7 @@ class EdgeMap:
             raise self.locate(refused) from refused
 
 
+@lru_cache(maxsize=1024)
 def scale_of(unit: str, atmospheric_pressure: float = STANDARD_ATMOSPHERE) -> Scale:
     """Return how SI values are printed in a unit."""
     known = find_unit(unit)
@@ -248,13 +251,13 @@ class RequestReader:
         if dimension is None:
             self.fault(*_wrong_dimension(raw, unit, pointer, dimensions))
             return None
-        if unit.gauge and not gauge or dimension.endswith("_difference") and not _plain(unit):
+        if (unit.gauge and not gauge) or (dimension.endswith("_difference") and not _plain(unit)):
             detail = f"found {raw.text!r}; an absolute unit such as {DEFAULT_UNITS[dimension]!r}"
             self.fault("unit-not-allowed", pointer, f"{detail} is needed here")
             return None
         value = to_si(raw.value, unit, atmospheric_pressure=self.atmospheric_pressure)
         if not _within(value, above, at_least):
-            self.fault("out-of-range", pointer, _out_of_range(raw, dimension, above, at_least))
+            self.fault("impossible-value", pointer, _out_of_range(raw, dimension, above, at_least))
             return None
         self.used.setdefault(dimension, raw.unit)
         if dimension in DIFFERENCES:
@@ -264,10 +267,51 @@ class RequestReader:
         shared = None if raw.u_shared is None else float(difference_to_si(raw.u_shared, unit))
         return Measured(value, dimension, raw.unit, u, shared, raw.instrument, raw.bound)
 
+    def constant(
+        self,
+        raw: RawQuantity,
+        pointer: str,
+        subject: Subject,
+        allowed: Mapping[str, Exponents],
+        code: str,
+        why: str,
+    ) -> tuple[str, float] | None:
+        """Return the kind and SI value of a constant whose unit says what it is.
+
+        Parameters
+        ----------
+        raw : RawQuantity
+        pointer, subject
+            As :meth:`quantity`.
+        allowed : Mapping[str, Exponents]
+            Exponents of the unit, by a unit that has them, spelt.
+        code, why : str
+            Of the fault that a unit is which fits none of them.
+        """
+        unit = self.unit(raw.unit, pointer)
+        if unit is None:
+            return None
+        self.places[subject] = Place(pointer, raw.unit)
+        for spelt, exponents in allowed.items():
+            pairs = zip(unit.exponents, exponents, strict=True)
+            if _plain(unit) and all(abs(a - b) < 1e-9 for a, b in pairs):
+                value = to_si(raw.value, unit)
+                if value > 0 and math.isfinite(value):
+                    return spelt, float(value)
+                self.fault("impossible-value", pointer, f"found {raw.text!r}; above zero is needed")
+                return None
+        expected = " or ".join(repr(spelt) for spelt in allowed)
+        self.fault(code, pointer, f"found {raw.text!r}; {why} a unit such as {expected}")
+        return None
+
     def _uncertainty(
         self, raw: RawQuantity, unit: Unit, value: float, pointer: str
     ) -> float | None:
         if raw.u_rel is not None:
+            if raw.u is not None:
+                place = child(pointer, "u_rel")
+                self.fault("conflicting-fields", place, "state 'u' or 'u_rel', not both")
+                return None
             if not is_difference_safe(unit):
                 self.fault(
                     "relative-uncertainty-of-offset-unit",
@@ -329,7 +373,7 @@ class RequestReader:
                 )
         if self.faults:
             raise MeaningError(tuple(self.faults))
-        return EdgeMap(self.places, self.scales(wanted))
+        return EdgeMap(self.places, self.scales(wanted), tuple(self.notes), tuple(self.assumed))
 
 
 def words(dimension: str) -> str:

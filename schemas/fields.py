@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 from functools import lru_cache
 from typing import Any
 
@@ -74,10 +75,8 @@ class Number(StrictField):
         if self.integer and value != int(value):
             raise _wrong_type("a whole number", value)
         low = self.at_least if self.above is None else self.above
-        if (
-            not self.at_least <= value <= self.at_most
-            or self.above is not None
-            and value <= self.above
+        if not self.at_least <= value <= self.at_most or (
+            self.above is not None and value <= self.above
         ):
             kind = "at least" if self.above is None else "above"
             raise ValidationError(
@@ -88,11 +87,9 @@ class Number(StrictField):
             )
         return int(value) if self.integer else float(value)
 
-    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+    def published(self, convert: Converter) -> Published:
         """Return type and bounds."""
-        low = (
-            {"minimum": self.at_least} if self.above is None else {"exclusiveMinimum": self.above}
-        )
+        low = {"minimum": self.at_least} if self.above is None else {"exclusiveMinimum": self.above}
         return {"type": "integer" if self.integer else "number", **low, "maximum": self.at_most}
 
 
@@ -104,7 +101,7 @@ class Flag(StrictField):
             raise _wrong_type("true or false", value)
         return value
 
-    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+    def published(self, convert: Converter) -> Published:
         """Return the boolean type."""
         return {"type": "boolean"}
 
@@ -125,7 +122,7 @@ class Text(StrictField):
             raise ValidationError(message("bad-text", f"found {clip(value)!r}; {self.wanted}"))
         return value
 
-    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+    def published(self, convert: Converter) -> Published:
         """Return the string type and its pattern."""
         return {"type": "string", "pattern": self.pattern}
 
@@ -145,7 +142,7 @@ class Choice(StrictField):
             )
         return value
 
-    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+    def published(self, convert: Converter) -> Published:
         """Return the enumeration."""
         return {"type": "string", "enum": list(self.choices)}
 
@@ -169,7 +166,7 @@ class List(StrictField):
                     f"found {len(value)} entries; allowed: {self.at_least} to {self.at_most}",
                 )
             )
-        return _each(dict(enumerate(value)), self.each, value, lambda done: list(done.values()))
+        return list(_each(dict(enumerate(value)), self.each, value).values())
 
     def published(self, convert: Converter) -> Published:
         """Return the array and what it holds."""
@@ -211,8 +208,8 @@ class Map(StrictField):
             )
         bad = {name: [_bad_name(name)] for name in value if not _good_name(name)}
         if bad:
-            raise ValidationError(bad)  # type: ignore[arg-type]
-        return _each(value, self.each, value, lambda done: done)
+            raise ValidationError(bad)
+        return _each(value, self.each, value)
 
     def published(self, convert: Converter) -> Published:
         """Return the object, its names and what stands under them."""
@@ -238,12 +235,7 @@ def _bad_name(name: str) -> Message:
     )
 
 
-def _each(
-    items: Mapping[Any, Any],
-    field: fields.Field[Any],
-    data: Any,
-    collect: Callable[[dict[Any, Any]], Any],
-) -> Any:
+def _each(items: Mapping[Any, Any], field: fields.Field[Any], data: Any) -> dict[Any, Any]:
     done: dict[Any, Any] = {}
     faults: dict[Any, Any] = {}
     for name, item in items.items():
@@ -252,48 +244,8 @@ def _each(
         except ValidationError as error:
             faults[name] = error.messages
     if faults:
-        raise ValidationError(faults)  # type: ignore[arg-type]
-    return collect(done)
-
-
-class UncertainSchema(ClosedSchema):
-    """The object form of a quantity."""
-
-    requires = ', such as {"value": 12.5, "unit": "kmol/h"}'
-
-    value = Number(required=True)
-    unit = Text(
-        pattern=r"^[^\x00-\x1f]{0,40}$",
-        wanted=f"a unit is at most {MAX_UNIT_LENGTH} characters long",
-        metadata=describe("Left out: the quantity is dimensionless."),
-    )
-    u = fields.Raw(
-        metadata=describe(
-            "Standard uncertainty, a difference: a number in the unit of the value, or a"
-            " quantity of the same kind. 0 is exact."
-        )
-    )
-    u_rel = Number(
-        at_least=0, at_most=10, metadata=describe("Standard uncertainty over the value.")
-    )
-    u_shared = Number(
-        at_least=0,
-        metadata=describe(
-            "Standard uncertainty, in the unit of the value, of the part that is constant over a"
-            " series and common to readings of the same instrument."
-        ),
-    )
-    instrument = Text(metadata=describe("Name of the instrument that gave the reading."))
-
-
-class LimitSchema(ClosedSchema):
-    """A reading that is a limit: a non-detect or an off-scale value."""
-
-    below = fields.Raw(metadata=describe("The value lies between 0 and this limit."))
-    above = fields.Raw(metadata=describe("The value lies above this limit."))
-
-
-_uncertain = UncertainSchema()
+        raise ValidationError(faults)
+    return done
 
 
 class Quantity(StrictField):
@@ -308,51 +260,21 @@ class Quantity(StrictField):
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> RawQuantity:
         if isinstance(value, str):
-            return parse_quantity(value, self.reading)
+            parsed: RawQuantity = parse_quantity(value, self.reading)
+            return parsed
         if isinstance(value, int | float) and not isinstance(value, bool):
             check_magnitude(value)
             return RawQuantity(float(value))
         if not isinstance(value, dict):
             raise _wrong_type('a quantity such as "12.5 kmol/h"', value)
-        if self.reading and ("below" in value or "above" in value) and "value" not in value:
-            return _limit(value)
-        loaded: dict[str, Any] = _uncertain.load(value)
-        return _uncertain_quantity(loaded)
+        if self.reading and "value" not in value and ("below" in value or "above" in value):
+            limit: dict[str, Any] = _limit.load(value)
+            return _limit_quantity(limit)
+        return _uncertain_quantity(_uncertain.load(value))
 
-    def published(self, convert: Converter) -> Published:  # noqa: ARG002
+    def published(self, convert: Converter) -> Published:
         """Return a reference to the shared component."""
         return {"$ref": f"#/components/schemas/{'Reading' if self.reading else 'Quantity'}"}
-
-
-def _uncertain_quantity(loaded: dict[str, Any]) -> RawQuantity:
-    if "u" in loaded and "u_rel" in loaded:
-        raise ValidationError(
-            {"u_rel": [message("conflicting-fields", "state u or u_rel, not both")]}  # type: ignore[arg-type]
-        )
-    u, u_unit = loaded.pop("u", None), None
-    if u is not None:
-        try:
-            difference = Quantity().deserialize(u)
-        except ValidationError as error:
-            raise ValidationError({"u": error.messages}) from None  # type: ignore[arg-type]
-        if isinstance(u, dict) or difference.value < 0:
-            wanted = "u is a number at or above 0, or a quantity such as \"0.5 K\""
-            raise ValidationError({"u": [message("out-of-range", wanted)]})  # type: ignore[arg-type]
-        u, u_unit = difference.value, None if isinstance(u, int | float) else difference.unit
-    loaded["unit"] = loaded.get("unit", "").strip() or "1"
-    return RawQuantity(u=u, u_unit=u_unit, **loaded)
-
-
-def _limit(value: dict[str, Any]) -> RawQuantity:
-    loaded = LimitSchema().load(value)
-    if len(loaded) != 1:
-        raise ValidationError(message("conflicting-fields", "state below or above, not both"))
-    bound, limit = next(iter(loaded.items()))
-    try:
-        quantity = Quantity().deserialize(limit)
-    except ValidationError as error:
-        raise ValidationError({bound: error.messages}) from None  # type: ignore[arg-type]
-    return RawQuantity(quantity.value, quantity.unit, bound=bound)
 
 
 class OneOf(StrictField):
@@ -388,6 +310,72 @@ class OneOf(StrictField):
         return {"anyOf": [convert(field) for field in self.forms.values()]}
 
 
+class UncertainSchema(ClosedSchema):
+    """The object form of a quantity."""
+
+    requires = ', such as {"value": 12.5, "unit": "kmol/h"}'
+
+    value = Number(required=True)
+    unit = Text(
+        pattern=r"^[^\x00-\x1f]{0,40}$",
+        wanted=f"a unit is at most {MAX_UNIT_LENGTH} characters long",
+        metadata=describe("Left out: the quantity is dimensionless."),
+    )
+    u = OneOf(
+        {
+            "string": Text(
+                pattern=QUANTITY_PATTERN.replace("[+-]?", "", 1),
+                wanted='an uncertainty is a number of zero or more and a unit, such as "0.5 K"',
+            ),
+            "otherwise": Number(at_least=0),
+        },
+        metadata=describe(
+            "Standard uncertainty, a difference: a number in the unit of the value, or a quantity"
+            " of the same kind. 0 is exact."
+        ),
+    )
+    u_rel = Number(
+        at_least=0, at_most=10, metadata=describe("Standard uncertainty over the value.")
+    )
+    u_shared = Number(
+        at_least=0,
+        metadata=describe(
+            "Standard uncertainty, in the unit of the value, of the part that is constant over a"
+            " series and common to readings of the same instrument."
+        ),
+    )
+    instrument = Text(metadata=describe("Name of the instrument that gave the reading."))
+
+
+class LimitSchema(ClosedSchema):
+    """A reading that is a limit, a non-detect or an off-scale value: exactly one of the two."""
+
+    below = Quantity(metadata=describe("The value lies between 0 and this limit."))
+    above = Quantity(metadata=describe("The value lies above this limit."))
+
+
+_uncertain = UncertainSchema()
+_limit = LimitSchema()
+
+
+def _uncertain_quantity(loaded: dict[str, Any]) -> RawQuantity:
+    u = loaded.pop("u", None)
+    u_unit = None
+    if isinstance(u, str):
+        difference = parse_quantity(u)
+        u, u_unit = difference.value, difference.unit
+    loaded["unit"] = loaded.get("unit", "").strip() or "1"
+    return RawQuantity(u=u, u_unit=u_unit, **loaded)
+
+
+def _limit_quantity(loaded: dict[str, Any]) -> RawQuantity:
+    if len(loaded) != 1:
+        raise ValidationError(message("not-a-quantity", "state 'below' or 'above', not both"))
+    bound, limit = next(iter(loaded.items()))
+    said: RawQuantity = replace(limit, bound=bound)
+    return said
+
+
 class Tagged(StrictField):
     """An object whose form is told by a discriminator field such as ``kind``."""
 
@@ -403,12 +391,12 @@ class Tagged(StrictField):
         allowed = f"allowed: {', '.join(self.forms)}"
         if self.tag not in value:
             text = f"the field {self.tag!r} is required and was not sent; {allowed}"
-            raise ValidationError({self.tag: [message("missing-field", text)]})  # type: ignore[arg-type]
+            raise ValidationError({self.tag: [message("missing-field", text)]})
         name = value[self.tag]
         if not isinstance(name, str) or name not in self.forms:
             found = repr(clip(name)) if isinstance(name, str) else kind_of(name)
             text = f"found {found}; {allowed}"
-            raise ValidationError({self.tag: [message("not-a-choice", text)]})  # type: ignore[arg-type]
+            raise ValidationError({self.tag: [message("not-a-choice", text)]})
         return self.forms[name].load(value)
 
     def published(self, convert: Converter) -> Published:

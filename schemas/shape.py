@@ -148,4 +148,3 @@ def _unknown_field(pointer: str, allowed: tuple[str, ...]) -> str:
     near = difflib.get_close_matches(name[:80], allowed, n=1)
     hint = f"; did you mean {near[0]!r}?" if near else ""
     return f"no field {name[:80]!r} is known here{hint} Allowed: {', '.join(sorted(allowed))}."
-

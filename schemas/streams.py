@@ -134,9 +134,6 @@ class StreamReader:
     batch: bool = False
     defaults: dict[str, list[str]] = field(default_factory=dict)
 
-    def __post_init__(self) -> None:
-        self.indices = {name: i for i, name in enumerate(self.reactions.names)}
-
     def metered(
         self, document: Json, pointer: str, subject: Subject, *, required: bool
     ) -> tuple[MeteredStream, ...]:
@@ -185,7 +182,7 @@ class StreamReader:
         reader.at(subject, pointer)
         if phase is None:
             reader.fault(
-                "missing-field",
+                "field-needed",
                 child(pointer, "phase"),
                 f"the phase is needed; allowed: {', '.join(PHASES)}",
             )
@@ -212,7 +209,7 @@ class StreamReader:
             temperature=conditions["temperature"],
             pressure=conditions["pressure"],
             compressibility=document.get("compressibility", 1.0),
-            density=self._density(document, pointer, subject, phase),
+            density=self.density(document, pointer, subject, phase),
         )
         return stream if len(reader.faults) == kept else None
 
@@ -245,7 +242,7 @@ class StreamReader:
             self.reader.fault("stream-form", child(pointer, wrong), f"state {right!r} here")
         if form == "concentrations" and right not in document:
             self.reader.fault(
-                "missing-field",
+                "field-needed",
                 child(pointer, right),
                 f"concentrations need the {right.replace('_', ' ')} that they are in",
             )
@@ -275,7 +272,7 @@ class StreamReader:
 
     def _present(self, document: Json, analysis: Analysis | None) -> frozenset[int]:
         names = set(document.get("flows", ())) | set(document.get("amounts", ()))
-        present = {self.indices[name] for name in names if name in self.indices}
+        present = {i for i in map(self.reactions.find, names) if i is not None}
         if analysis is not None:
             for component in analysis.components:
                 present.update(component.weights)
@@ -298,20 +295,28 @@ class StreamReader:
             for name, raw in document[form].items():
                 place, about = child(pointer, form, name), (*subject, form, name)
                 found = self.reader.quantity(raw, place, about, total, mass, at_least=0)
-                if found is None or name not in self.indices:
+                index = self.reactions.find(name)
+                if found is None or index is None:
                     continue
                 kind: FlowKind = "amount" if found.dimension == total else "mass"
                 reading = self._measurement(found, about, "flow", place)
                 assert reading is not None
-                yield FlowReading(kind, reading, self.indices[name])
+                yield FlowReading(kind, reading, index)
         if "flow" in document and form == "analysis":
             yield from self._total(document, pointer, subject, phase, (total, mass, volume))
-        if volume in document:
-            place, about = child(pointer, volume), (*subject, volume)
-            found = self.reader.quantity(document[volume], place, about, volume, above=0)
-            reading = self._measurement(found, about, "flow", place)
-            if reading is not None:
-                yield FlowReading("volume", reading)
+        reading = self.volume(document, pointer, subject, volume)
+        if reading is not None:
+            yield FlowReading("volume", reading)
+
+    def volume(
+        self, document: Json, pointer: str, subject: Subject, name: str
+    ) -> Measurement | None:
+        """Return the stated volumetric flow (batch: volume) of a stream, if any."""
+        if name not in document:
+            return None
+        place, about = child(pointer, name), (*subject, name)
+        found = self.reader.quantity(document[name], place, about, name, above=0)
+        return self._measurement(found, about, "flow", place)
 
     def _total(
         self,
@@ -352,7 +357,10 @@ class StreamReader:
         stated = {}
         for name in ("temperature", "pressure"):
             stated[name] = self.reader.quantity(
-                document["meter"][name], child(place, name), (*subject, "meter", name), name,
+                document["meter"][name],
+                child(place, name),
+                (*subject, "meter", name),
+                name,
                 above=0,
             )
         temperature, pressure = stated["temperature"], stated["pressure"]
@@ -361,9 +369,10 @@ class StreamReader:
         z: float = document["meter"]["compressibility"]
         return z * GAS_CONSTANT * temperature.value / pressure.value
 
-    def _density(
+    def density(
         self, document: Json, pointer: str, subject: Subject, phase: StreamPhase
     ) -> Measurement | None:
+        """Return the stated density of a liquid, if any."""
         if "density" not in document:
             return None
         place, about = child(pointer, "density"), (*subject, "density")
@@ -403,7 +412,7 @@ class StreamReader:
             document, child(pointer, "values"), (*subject, "values"), phase, lumps
         )
         removed = tuple(self._removed(document.get("removed", ()), pointer, subject))
-        balance = self._known(document.get("balance"), child(pointer, "balance"))
+        balance = self._known(document.get("balance"))
         measured = {i for component in values for i in component.weights}
         gone = {removal.substance for removal in removed}
         if balance is not None and (balance in measured or balance in gone):
@@ -427,11 +436,8 @@ class StreamReader:
             normalised=document.get("normalised", False),
         )
 
-    def _known(self, name: str | None, pointer: str) -> int | None:
-        if name is None:
-            return None
-        # A name that the account does not have was refused with the substances.
-        return self.indices.get(name)
+    def _known(self, name: str | None) -> int | None:
+        return None if name is None else self.reactions.find(name)
 
     def _values(
         self,
@@ -484,8 +490,10 @@ class StreamReader:
 
     def _weights(self, name: str, lumps: Mapping[str, Mapping[str, float]]) -> dict[int, float]:
         if name in lumps:
-            return {self.indices[k]: w for k, w in lumps[name].items() if k in self.indices}
-        return {self.indices[name]: 1.0} if name in self.indices else {}
+            members = ((self.reactions.find(member), weight) for member, weight in lumps[name].items())
+            return {i: weight for i, weight in members if i is not None}
+        index = self.reactions.find(name)
+        return {} if index is None else {index: 1.0}
 
     def _value(
         self, raw: RawQuantity, pointer: str, subject: Subject, basis: str, phase: StreamPhase
@@ -511,25 +519,23 @@ class StreamReader:
             return None
         if found.value > 1:
             reader.fault(
-                "out-of-range",
+                "impossible-value",
                 pointer,
                 f"found {raw.text!r}, more than the whole; a fraction is at most 1 (100 %)",
             )
             return None
         return found
 
-    def _removed(
-        self, removed: Iterable[Any], pointer: str, subject: Subject
-    ) -> Iterator[Removal]:
+    def _removed(self, removed: Iterable[Any], pointer: str, subject: Subject) -> Iterator[Removal]:
         for i, entry in enumerate(removed):
             place, about = child(pointer, "removed", i), (*subject, "removed", i)
             self.reader.at(about, place)
             if isinstance(entry, str):
-                index = self._known(entry, place)
+                index = self._known(entry)
                 if index is not None:
                     yield Removal(index)
                 continue
-            index = self._known(entry["species"], child(place, "species"))
+            index = self._known(entry["species"])
             if ("residual" in entry) == ("saturated_at" in entry):
                 self.reader.fault(
                     "conflicting-fields",
@@ -554,7 +560,9 @@ class StreamReader:
             share = self._saturated(entry, place, (*subject, "saturated_at"))
         if share is not None and share >= 1:
             self.reader.fault(
-                "out-of-range", place, f"the sample would hold {share:.4g} of it; below 1 is allowed"
+                "impossible-value",
+                place,
+                f"the sample would hold {share:.4g} of it; below 1 is allowed",
             )
             return None
         return share
@@ -574,7 +582,7 @@ class StreamReader:
         if "vapour_pressure" in stated:
             known = found["vapour_pressure"]
             return None if known is None else known.value / pressure.value
-        index = self.indices.get(entry["species"])
+        index = self.reactions.find(entry["species"])
         if index is None:
             return None
         try:

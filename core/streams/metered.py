@@ -95,7 +95,8 @@ class FlowReading:
 
     ``substance`` None is the total; ``as_analysed`` counts only what is left
     after the removals of the stream's own analysis. ``kind`` ``volume`` of a
-    gas needs ``molar_volume`` (m3/mol at the meter's own conditions).
+    gas has its ``molar_volume`` (m3/mol) at the meter's own conditions; without
+    it the volume is that at the stream's own.
     """
 
     kind: FlowKind
@@ -113,8 +114,9 @@ class MeteredStream:
     ----------
     phase : StreamPhase
     present : frozenset of int
-        Substances that may be in it. Of an outlet: all that the feed and the
-        reactions can bring, unless there are several outlet streams.
+        Substances that may be in it. A single outlet holds all that the feed
+        and the reactions bring. Of several, each substance leaves in those that
+        name it, and may leave in any where none does.
     flows : tuple of FlowReading
     analysis : Analysis or None
     temperature, pressure : Measurement or None

@@ -1,0 +1,74 @@
+"""The mole account written out as formulas, for people who check it by hand."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+from core.arrays import FloatArray
+
+
+def flow_expression(
+    name: str, key: str, theta: float, ratio: float, *, batch: bool, is_key: bool
+) -> str:
+    """Return the flow of a substance as a function of the key's conversion.
+
+    ``F_i = F_A0 (theta_i + nu_i/|nu_A| X)``; ``ratio`` is ``nu_i/|nu_A|``. A
+    substance that takes no part keeps its flow.
+    """
+    letter = "N" if batch else "F"
+    if ratio == 0:
+        return f"{letter}_{name}0"
+    return f"{letter}_{key}0 {_bracket(theta, ratio, is_key)}"
+
+
+def concentration_expression(
+    key: str, theta: float, ratio: float, *, is_key: bool, epsilon: float, conditions: str
+) -> str:
+    """Return the concentration of a substance as a function of the key's conversion.
+
+    ``epsilon`` 0 leaves the volume's own factor out; ``conditions`` is the text
+    of the factors for temperature, pressure and compressibility, if any change.
+    """
+    text = f"C_{key}0 {_bracket(theta, ratio, is_key)}"
+    if epsilon:
+        text += f"/(1 {_signed(epsilon)} X)"
+    return f"{text} {conditions}".rstrip()
+
+
+def extents_expression(name: str, ids: Sequence[str], nu: FloatArray, *, batch: bool) -> str:
+    """Return the flow of a substance as a function of the extents of several reactions."""
+    letter = "N" if batch else "F"
+    terms = [f"{_signed(c, 'xi_' + id_)}" for id_, c in zip(ids, nu, strict=True) if c]
+    return " ".join([f"{letter}_{name}0", *terms])
+
+
+def condition_factors(changes: Sequence[str]) -> str:
+    """Return the factors by which changed conditions enter a gas concentration.
+
+    The letters with 0 are the inlet's, as in the table itself.
+    """
+    factor = {"temperature": "(T0/T)", "pressure": "(P/P0)", "compressibility": "(Z0/Z)"}
+    return "".join(
+        factor[name] for name in ("pressure", "temperature", "compressibility") if name in changes
+    )
+
+
+def _bracket(theta: float, ratio: float, is_key: bool) -> str:
+    if is_key:
+        return "(1 - X)"
+    term = _signed(ratio, "X")
+    if theta == 0:
+        return f"({term.removeprefix('+ ').replace('- ', '-')})"
+    return f"({_figure(theta)} {term})"
+
+
+def _signed(value: float, symbol: str = "") -> str:
+    sign = "-" if value < 0 else "+"
+    size = abs(value)
+    if not symbol:
+        return f"{sign} {_figure(size)}"
+    return f"{sign} {symbol}" if size == 1 else f"{sign} {_figure(size)} {symbol}"
+
+
+def _figure(value: float) -> str:
+    return f"{value:.6g}"

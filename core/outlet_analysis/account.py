@@ -1,0 +1,310 @@
+"""The unknowns of an account and what every metered stream is in terms of them.
+
+Unknown are the flow of each substance in each feed stream, the extents of the
+reactions and, of several outlet streams, the flows in all but one; the one
+left takes what feed and reactions leave over, so that every balance holds by
+construction:
+
+    sum of outlets = sum of feeds + nu' xi
+
+Beside them stand the volumetric flow of a liquid, the temperature and pressure
+of a gas whose concentrations are read, and the scale of a normalised analysis.
+Every flow is a linear form of the unknowns.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+
+from core.arrays import FloatArray
+from core.errors import Subject, refuse
+from core.outlet_analysis.readings import (
+    FURTHER,
+    PRESSURE,
+    SCALE,
+    TEMPERATURE,
+    VOLUME,
+    Readings,
+    ReadingWriter,
+    Series,
+    read,
+)
+from core.reactions.reaction_set import ReactionSet
+from core.streams.metered import MeteredStream
+
+Kind = Literal["flow", "extent", "volume", "temperature", "pressure", "scale"]
+
+FURTHER_KINDS: dict[int, Kind] = {
+    VOLUME: "volume",
+    TEMPERATURE: "temperature",
+    PRESSURE: "pressure",
+    SCALE: "scale",
+}
+
+
+@dataclass(frozen=True, eq=False)
+class AccountProblem:
+    """Readings of feed and outlet from which an account is to be estimated.
+
+    Attributes
+    ----------
+    reactions : ReactionSet
+    key : int
+        Index of the key reactant.
+    feed, outlet : tuple of MeteredStream
+        The account closes on their sums. Without any outlet the feed alone is
+        estimated.
+    batch : bool
+        Amounts stand in place of flows.
+    coverage : float
+        Of the intervals that the caller will make of each ``u``.
+    series : Mapping of Subject to Series
+        The readings that vary over N samples, each in place of the single
+        reading of the same subject; none for a single sample.
+    """
+
+    reactions: ReactionSet
+    key: int
+    feed: tuple[MeteredStream, ...]
+    outlet: tuple[MeteredStream, ...]
+    batch: bool = False
+    coverage: float = 0.95
+    series: Mapping[Subject, Series] = field(default_factory=dict)
+
+
+@dataclass(frozen=True)
+class Unknown:
+    """One unknown: of ``stream`` (a flow, or a further quantity), or an extent.
+
+    ``index`` is that of the substance or of the reaction.
+    """
+
+    kind: Kind
+    stream: int = -1
+    index: int = -1
+
+
+@dataclass(frozen=True, eq=False)
+class Account:
+    """Readings and unknowns of a problem, put together.
+
+    Attributes
+    ----------
+    problem : AccountProblem
+    readings : Readings
+    writer : ReadingWriter
+    unknowns : tuple of Unknown, length n
+    stream_map : ndarray, shape (T, n)
+        From the unknowns to the stream space of the readings.
+    feed_map, outlet_map : ndarray, shape (S, n)
+        From the unknowns to the summed flows in and out.
+    extent_map : ndarray, shape (R, n)
+        From the unknowns to the extents, of a set of independent reactions.
+    """
+
+    problem: AccountProblem
+    readings: Readings
+    writer: ReadingWriter
+    unknowns: tuple[Unknown, ...]
+    stream_map: FloatArray
+    feed_map: FloatArray
+    outlet_map: FloatArray
+    extent_map: FloatArray
+
+    @property
+    def streams(self) -> tuple[MeteredStream, ...]:
+        """Feeds followed by outlets."""
+        return (*self.problem.feed, *self.problem.outlet)
+
+
+def independent_reactions(nu: FloatArray) -> list[int]:
+    """Indices of the first reactions that are not combinations of those before them."""
+    chosen: list[int] = []
+    directions: list[FloatArray] = []
+    for j, row in enumerate(nu):
+        rest = row / (np.linalg.norm(row) or 1.0)
+        for direction in directions:
+            rest = rest - (rest @ direction) * direction
+        size = float(np.linalg.norm(rest))
+        if size > 1e-9:
+            chosen.append(j)
+            directions.append(rest / size)
+    return chosen
+
+
+class _Columns:
+    """Collects unknowns while the map from them is built."""
+
+    def __init__(self) -> None:
+        self.unknowns: list[Unknown] = []
+
+    def add(self, kind: Kind, stream: int = -1, index: int = -1) -> int:
+        self.unknowns.append(Unknown(kind, stream, index))
+        return len(self.unknowns) - 1
+
+
+def build_account(problem: AccountProblem) -> Account:
+    """Put together the account whose outlet follows from its feed and the extents.
+
+    Raises
+    ------
+    Refused
+        ``key-not-fed``: no feed stream holds the key. Also what
+        :func:`core.outlet_analysis.readings.read` raises.
+    """
+    _check(problem)
+    readings, writer = read(
+        problem.reactions, (*problem.feed, *problem.outlet), len(problem.feed), problem.series
+    )
+    reactions = independent_reactions(problem.reactions.nu) if problem.outlet else []
+    return _assemble(problem, readings, writer, reactions, released=None)
+
+
+def release_outlet(account: Account) -> Account:
+    """Return the account with feed and outlet unconnected, on the same readings.
+
+    What leaves is then known from the readings of the outlet alone. Only where
+    no meter tells how much leaves, the substances that take no part in any
+    reaction still tie the outlet to the feed.
+    """
+    problem = account.problem
+    readings = account.readings
+    metered = bool((readings.flow & (readings.stream >= len(problem.feed))).any())
+    inert = ~np.any(problem.reactions.nu != 0, axis=0)
+    ties = frozenset[int]() if metered else frozenset(np.flatnonzero(inert).tolist())
+    return _assemble(problem, readings, account.writer, [], released=ties)
+
+
+def _check(problem: AccountProblem) -> None:
+    name = problem.reactions.names[problem.key]
+    if not any(problem.key in stream.present for stream in problem.feed):
+        raise refuse(
+            "key-not-fed",
+            ("key",),
+            "found the key {key}, which no feed stream holds; the conversion counts what is fed"
+            " of it, so choose a substance of the feed or state its flow",
+            key=name,
+        )
+
+
+def _places(problem: AccountProblem, reachable: Iterable[int]) -> dict[int, list[int]]:
+    """Outlet streams in which each substance may leave, counted from 0."""
+    outlets = problem.outlet
+    found: dict[int, list[int]] = {}
+    for i in reachable:
+        named = [q for q, stream in enumerate(outlets) if i in stream.present]
+        phase = problem.reactions.substances[i].phase
+        if not named and phase is not None:
+            named = [q for q, stream in enumerate(outlets) if stream.phase == phase]
+        found[i] = named if named and len(outlets) > 1 else list(range(len(outlets)))
+    return found
+
+
+def _assemble(
+    problem: AccountProblem,
+    readings: Readings,
+    writer: ReadingWriter,
+    reactions: list[int],
+    released: frozenset[int] | None,
+) -> Account:
+    """Lay out the unknowns; ``released`` names the ties of an unconnected outlet."""
+    nu = problem.reactions.nu
+    count, feeds = len(problem.reactions.substances), len(problem.feed)
+    streams = (*problem.feed, *problem.outlet)
+    columns = _Columns()
+    entries: list[tuple[int, int, float]] = []  # row of the stream space, column, coefficient
+
+    # Summed flows as {column: coefficient} by substance, feeds first.
+    total: list[dict[int, float]] = [{} for _ in range(count)]
+    for g, stream in enumerate(problem.feed):
+        for i in sorted(stream.present):
+            column = columns.add("flow", g, i)
+            entries.append((g * count + i, column, 1.0))
+            total[i][column] = 1.0
+    fed = [dict(row) for row in total]
+    for j in reactions:
+        column = columns.add("extent", index=j)
+        for i in np.flatnonzero(nu[j]).tolist():
+            total[i][column] = float(nu[j, i])
+
+    made = np.any(nu != 0, axis=0)
+    reachable = [i for i in range(count) if fed[i] or made[i]]
+    left: list[dict[int, float]] = [{} for _ in range(count)]
+    for i, where in _places(problem, reachable).items() if problem.outlet else ():
+        free = released is not None and i not in released
+        for q in where if free else where[:-1]:
+            column = columns.add("flow", feeds + q, i)
+            entries.append(((feeds + q) * count + i, column, 1.0))
+            left[i][column] = 1.0
+        if not free:
+            row = (feeds + where[-1]) * count + i
+            remainder = dict(total[i])
+            for column in left[i]:
+                remainder[column] = -1.0
+            entries.extend((row, column, value) for column, value in remainder.items())
+            left[i] = total[i]
+
+    start = len(streams) * count
+    entries.extend(
+        (start + g * FURTHER + quantity, column, 1.0)
+        for g, quantity, column in _further(problem, readings, columns)
+    )
+
+    n = len(columns.unknowns)
+    stream_map = np.zeros((start + len(streams) * FURTHER, n))
+    for row, column, value in entries:
+        stream_map[row, column] += value
+    feed_map, outlet_map = np.zeros((count, n)), np.zeros((count, n))
+    for i in range(count):
+        for column, value in fed[i].items():
+            feed_map[i, column] = value
+        for column, value in left[i].items():
+            outlet_map[i, column] = value
+    extent_map = np.zeros((len(nu), n))
+    for column, unknown in enumerate(columns.unknowns):
+        if unknown.kind == "extent":
+            extent_map[unknown.index, column] = 1.0
+    return Account(
+        problem,
+        readings,
+        writer,
+        tuple(columns.unknowns),
+        stream_map,
+        feed_map,
+        outlet_map,
+        extent_map,
+    )
+
+
+def _further(
+    problem: AccountProblem, readings: Readings, columns: _Columns
+) -> list[tuple[int, int, int]]:
+    """Further unknowns: (stream, quantity, column), a volume shared where density is constant."""
+    feeds = len(problem.feed)
+    streams = (*problem.feed, *problem.outlet)
+    liquid_feeds = [g for g in range(feeds) if streams[g].phase == "liquid"]
+    liquid_outlets = [g for g in range(feeds, len(streams)) if streams[g].phase == "liquid"]
+    # One liquid goes in and one comes out, of constant density unless its own is read.
+    sharing = (
+        liquid_outlets[0]
+        if len(liquid_outlets) == 1
+        and liquid_feeds
+        and streams[liquid_outlets[0]].density is None
+        and (liquid_outlets[0], VOLUME) in readings.used
+        else -1
+    )
+    volumes = {g for g, quantity in readings.used if quantity == VOLUME} - {sharing}
+    if sharing >= 0:
+        volumes.update(liquid_feeds)
+    column_of = {g: columns.add("volume", g) for g in sorted(volumes)}
+    found = [(g, VOLUME, column) for g, column in column_of.items()]
+    if sharing >= 0:
+        found += [(sharing, VOLUME, column_of[g]) for g in liquid_feeds]
+    for g, quantity in sorted(readings.used):
+        if quantity != VOLUME:
+            found.append((g, quantity, columns.add(FURTHER_KINDS[quantity], g)))
+    return found

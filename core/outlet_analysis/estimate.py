@@ -1,0 +1,132 @@
+"""The account as estimated, and every reading beside what the account makes of it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Fault, Note, Subject
+from core.outlet_analysis.account import Account
+from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.testing import WithoutSuspects
+
+
+@dataclass(frozen=True, eq=False)
+class ReadingTable:
+    """Every reading against the account, m of them; not a number where there is none.
+
+    Attributes
+    ----------
+    subjects : tuple of Subject, length m
+    measured, u : ndarray, shape (..., m)
+        SI; the limit of a bound, whose ``u`` is absent.
+    bound : ndarray of int8, shape (..., m)
+        ``BELOW``, ``ABOVE`` or 0.
+    reconciled, reconciled_u : ndarray, shape (..., m)
+    adjustment_over_u : ndarray, shape (..., m)
+        (measured - reconciled)/sqrt(u^2 - u_reconciled^2), standard normal
+        where nothing is wrong; absent without redundancy.
+    redundancy : ndarray, shape (..., m)
+        1 - leverage: 0 where no other reading checks this one; absent of a bound.
+    smallest_detectable_error : ndarray, shape (..., m)
+        SI; an error this large is found nine times in ten by a test that
+        raises one false alarm in twenty: 3.24 u/sqrt(redundancy).
+    suspect_set : ndarray of int, shape (..., m)
+        Number, from 1, of the set of readings that cannot be told apart and
+        one of which errs; 0 where nothing is suspected.
+    within_limit : ndarray of int8, shape (..., m)
+        1 within, 0 beyond, -1 where there is no limit.
+    """
+
+    subjects: tuple[Subject, ...]
+    measured: FloatArray
+    u: FloatArray
+    bound: NDArray[np.int8]
+    reconciled: FloatArray
+    reconciled_u: FloatArray
+    adjustment_over_u: FloatArray
+    redundancy: FloatArray
+    smallest_detectable_error: FloatArray
+    suspect_set: IntArray
+    within_limit: NDArray[np.int8]
+
+
+@dataclass(frozen=True, eq=False)
+class Estimate:
+    """The account that fits the readings best.
+
+    A series has a leading axis of N samples everywhere (``...``); a single
+    sample has none. A sample that cannot be estimated is in ``failed`` and
+    not a number everywhere else.
+
+    Attributes
+    ----------
+    account : Account
+        Its maps lead from ``z`` to flows and extents.
+    z : ndarray, shape (..., n)
+    covariance : ndarray, shape (..., n, n)
+    readings : ReadingTable
+    chi_square, limit, p_value : ndarray, shape (...)
+        Weighted sum of squares of the readings proper, its 95 % limit and the
+        probability of a larger one; the last two absent without redundancy.
+    degrees_of_freedom : ndarray of int, shape (...)
+    inconsistent : ndarray of bool, shape (...)
+        chi_square is above its limit.
+    per_mole_of_key : ndarray of bool, shape (...)
+        No reading tells how much flows: flows are per mole of key fed.
+    inflation : ndarray, shape (...)
+        Largest inflation of a variance by what the readings fail to tell apart.
+    without_suspects : tuple of WithoutSuspects
+        Of a single sample with suspects: the account without them, one for
+        each choice among readings that cannot be told apart.
+    failed : Mapping of int to Fault
+        By sample.
+    notes : tuple of Note
+    """
+
+    account: Account
+    z: FloatArray
+    covariance: FloatArray
+    readings: ReadingTable
+    chi_square: FloatArray
+    degrees_of_freedom: IntArray
+    limit: FloatArray
+    p_value: FloatArray
+    inconsistent: BoolArray
+    per_mole_of_key: BoolArray
+    inflation: FloatArray
+    without_suspects: tuple[WithoutSuspects, ...] = ()
+    failed: Mapping[int, Fault] = field(default_factory=dict)
+    notes: tuple[Note, ...] = ()
+
+    @property
+    def feed_flows(self) -> FloatArray:
+        """Flows into the reactor, shape (..., S), mol/s (batch: mol)."""
+        return np.asarray(self.z @ self.account.feed_map.T)
+
+    @property
+    def outlet_flows(self) -> FloatArray:
+        """Flows out of the reactor, shape (..., S), mol/s (batch: mol)."""
+        return np.asarray(self.z @ self.account.outlet_map.T)
+
+    @property
+    def extents(self) -> FloatArray:
+        """Extents of the reactions, shape (..., R), mol/s (batch: mol).
+
+        Of a set of dependent reactions the extents are not unique: those of
+        the independent ones that come first are given, the others are 0.
+        """
+        return np.asarray(self.z @ self.account.extent_map.T)
+
+    def covariance_of(self, forms: FloatArray) -> FloatArray:
+        """Covariance of linear forms (k, n) of ``z``, shape (..., k, k)."""
+        return np.asarray(forms @ self.covariance @ forms.T)
+
+    def u_of(self, forms: FloatArray) -> FloatArray:
+        """Standard uncertainties of linear forms (k, n) of ``z``, shape (..., k)."""
+        variance = ((forms @ self.covariance) * forms).sum(axis=-1)
+        return np.asarray(np.sqrt(np.maximum(variance, 0.0)))

@@ -1,0 +1,106 @@
+"""The one shape that every reading of an account has.
+
+A reading is a linear form, which may be zero or negative (what is counted),
+times powers of linear forms that must be positive (what it is counted
+against), times a constant:
+
+    h(z) = c (a . z) prod_q (b_q . z)^(e_q)
+
+A molar flow is a form alone; a mole fraction is a form over the total of what
+was analysed; the concentration of a gas is (a . z) P T^-1 total^-1 / (Z R).
+Values and derivatives of all of them come from this one place, for many
+samples at once.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from core.arrays import BoolArray, FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class Evaluation:
+    """What the forms give at ``z``; N samples, m readings, q bases.
+
+    Attributes
+    ----------
+    base : ndarray, shape (N, q)
+    product : ndarray, shape (N, m)
+        Constant times the powers of the bases.
+    value : ndarray, shape (N, m)
+    inside : ndarray of bool, shape (N,)
+        Every base is positive, so that the values mean something.
+    """
+
+    base: FloatArray
+    product: FloatArray
+    value: FloatArray
+    inside: BoolArray
+
+    def where(self, rows: BoolArray) -> Evaluation:
+        """Return the evaluation of the samples marked."""
+        return Evaluation(self.base[rows], self.product[rows], self.value[rows], self.inside[rows])
+
+
+@dataclass(frozen=True, eq=False)
+class Forms:
+    """Readings as forms over n unknowns.
+
+    Attributes
+    ----------
+    constants : ndarray, shape (m,) or (N, m)
+    numerators : ndarray, shape (m, n)
+    bases : ndarray, shape (q, n)
+    exponents : ndarray, shape (m, q)
+    """
+
+    constants: FloatArray
+    numerators: FloatArray
+    bases: FloatArray
+    exponents: FloatArray
+
+    def through(self, linear_map: FloatArray) -> Forms:
+        """Return the same readings over other unknowns z', with z = map z'."""
+        return Forms(
+            self.constants, self.numerators @ linear_map, self.bases @ linear_map, self.exponents
+        )
+
+    def samples(self, rows: BoolArray | NDArray[np.intp] | slice) -> Forms:
+        """Return the forms with the constants of the samples marked."""
+        if self.constants.ndim == 1:
+            return self
+        return Forms(self.constants[rows], self.numerators, self.bases, self.exponents)
+
+    def readings(self, rows: Sequence[int]) -> Forms:
+        """Return some of the readings."""
+        chosen = list(rows)
+        return Forms(
+            self.constants[..., chosen], self.numerators[chosen], self.bases, self.exponents[chosen]
+        )
+
+    def at(self, z: FloatArray) -> Evaluation:
+        """Evaluate at ``z``, shape (N, n)."""
+        numerator = z @ self.numerators.T
+        base = z @ self.bases.T
+        positive = base > 0
+        inside: BoolArray = np.asarray(positive.all(axis=-1))
+        if not inside.all():
+            base = np.where(positive, base, 1.0)
+        product = self.constants * np.exp(np.log(base) @ self.exponents.T)
+        return Evaluation(base, product, numerator * product, inside)
+
+    def jacobian(self, found: Evaluation, factor: FloatArray | None = None) -> FloatArray:
+        """Derivatives dh/dz, shape (N, m, n), each row times ``factor`` (N, m) if given."""
+        product, value = found.product, found.value
+        if factor is not None:
+            product, value = product * factor, value * factor
+        slopes = product[:, :, None] * self.numerators
+        if len(self.bases):
+            shares = (value[:, :, None] * self.exponents) / found.base[:, None, :]
+            slopes += shares @ self.bases
+        return slopes

@@ -1,0 +1,340 @@
+"""Weighted least squares over forms, for many samples at once.
+
+Minimises sum of w (y - h(z))^2 over the soft readings, while the stiff ones
+(exact, or so nearly exact that their weight would drown the others) enter as
+equations h(z) = y with a compliance, their variance: 0 for an exact one. Each
+step solves
+
+    [ J'WJ   A' ] [ dz     ]   [ J'W (y - h) ]
+    [ A     -D  ] [ lambda ] = [ y_c - h_c   ]
+
+Source of the method: Gauss-Newton with Lagrange multipliers, J. Nocedal,
+S. J. Wright, Numerical Optimization, 2nd ed., Springer, 2006, ch. 10 and 18;
+the step is shortened on their l1 merit function (section 18.3),
+which must not rise.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TypeAlias
+
+import numpy as np
+from numpy.typing import NDArray
+
+from core.arrays import BoolArray, FloatArray
+from core.outlet_analysis.forms import Evaluation, Forms
+
+IntArray: TypeAlias = NDArray[np.intp]
+
+MOST_STEPS = 60
+MOST_HALVINGS = 25
+SMALL_DECREMENT = 1e-10
+"""Square of the last step in units of the standard uncertainties of the unknowns."""
+SMALL_STEP = 1e-7
+"""Last step, relative to the natural size of the unknowns, where equations must be met."""
+ROUNDING_STEP = 1e-13
+"""A step that rounding alone can make, relative."""
+SINGULAR = 1e13
+"""Inflation of a variance beyond which double precision cannot tell unknowns apart."""
+
+
+@dataclass(frozen=True, eq=False)
+class Fit:
+    """Readings to fit: N samples, m readings, c of them stiff.
+
+    Attributes
+    ----------
+    forms : Forms
+    measured : ndarray, shape (N, m)
+        0 where missing.
+    weight : ndarray, shape (N, m)
+        1/u^2 of a soft reading; 0 of a missing or a stiff one.
+    stiff : ndarray of int, shape (c,)
+    compliance : ndarray, shape (N, c)
+        u^2 of a stiff reading; infinite where it is missing.
+    """
+
+    forms: Forms
+    measured: FloatArray
+    weight: FloatArray
+    stiff: IntArray
+    compliance: FloatArray
+
+    def samples(self, rows: BoolArray | IntArray | slice) -> Fit:
+        """Return the fit of the samples marked."""
+        return Fit(
+            self.forms.samples(rows),
+            self.measured[rows],
+            self.weight[rows],
+            self.stiff,
+            self.compliance[rows],
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class Solution:
+    """Where the fit came to rest: z, shape (N, n), and whether it did, shape (N,)."""
+
+    z: FloatArray
+    converged: BoolArray
+
+
+@dataclass(frozen=True, eq=False)
+class Curvature:
+    """Second-order facts at the solution.
+
+    Attributes
+    ----------
+    covariance : ndarray, shape (N, n, n)
+        Of the unknowns.
+    variance : ndarray, shape (N, m)
+        Of the fitted values.
+    redundancy : ndarray, shape (N, m)
+        1 - leverage; 0 of a missing or an exact reading.
+    slopes : ndarray, shape (N, m, n)
+        dh/dz.
+    inflation : ndarray, shape (N,)
+        Largest ratio of an unknown's variance to what it would be with all
+        the others known; infinite where the matrix is singular.
+    """
+
+    covariance: FloatArray
+    variance: FloatArray
+    redundancy: FloatArray
+    slopes: FloatArray
+    inflation: FloatArray
+
+    def samples(self, rows: BoolArray) -> Curvature:
+        """Return those of the samples marked."""
+        return Curvature(
+            self.covariance[rows],
+            self.variance[rows],
+            self.redundancy[rows],
+            self.slopes[rows],
+            self.inflation[rows],
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class _System:
+    """Matrices of one step, unknowns and equations scaled to order one."""
+
+    matrix: FloatArray
+    size: FloatArray
+    gauge: FloatArray
+
+
+def solve_stack(matrices: FloatArray, right: FloatArray) -> FloatArray:
+    """Solve a stack of systems (N, k, k) for (N, k, r); NaN where one is singular.
+
+    A singular matrix makes the stacked solver give up on all of them: the
+    stack is halved until it stands alone.
+    """
+    try:
+        return np.asarray(np.linalg.solve(matrices, right), dtype=float)
+    except np.linalg.LinAlgError:
+        if len(matrices) == 1:
+            return np.full_like(right, np.nan)
+        half = len(matrices) // 2
+        return np.concatenate(
+            [
+                solve_stack(matrices[:half], right[:half]),
+                solve_stack(matrices[half:], right[half:]),
+            ]
+        )
+
+
+def _system(
+    h: FloatArray, a: FloatArray, compliance: FloatArray, natural: FloatArray, ridge: float
+) -> _System:
+    diagonal = h.diagonal(axis1=1, axis2=2)
+    seen = diagonal > 0
+    size = np.where(seen, 1 / np.sqrt(np.where(seen, diagonal, 1.0)), natural)
+    n, c = h.shape[-1], a.shape[1]
+    scaled = h * size[:, :, None] * size[:, None, :]
+    if ridge:
+        scaled[:, range(n), range(n)] += ridge
+    if not c:
+        return _System(scaled, size, np.empty((len(h), 0)))
+    rows = a * size[:, None, :]
+    gauge = np.sqrt((rows * rows).sum(axis=-1))
+    gauge = np.where(np.isfinite(compliance) & (gauge > 0), gauge, np.inf)
+    # A missing equation leaves its multiplier at zero: row of A zero, compliance one.
+    rows /= gauge[:, :, None]
+    matrix = np.zeros((len(h), n + c, n + c))
+    matrix[:, :n, :n] = scaled
+    matrix[:, n:, :n] = rows
+    matrix[:, :n, n:] = rows.transpose(0, 2, 1)
+    absent = np.isinf(gauge)
+    matrix[:, range(n, n + c), range(n, n + c)] = -np.where(
+        absent, 1.0, np.where(absent, 0.0, compliance) / np.where(absent, 1.0, gauge) ** 2
+    )
+    return _System(matrix, size, gauge)
+
+
+def _matrices(fit: Fit, found: Evaluation) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """J'WJ (N, n, n), J'W(y - h) (N, n), and the slopes of the equations (N, c, n)."""
+    root = np.sqrt(fit.weight)
+    j = fit.forms.jacobian(found, root)
+    jt = j.transpose(0, 2, 1)
+    g = (jt @ (root * (fit.measured - found.value))[:, :, None])[:, :, 0]
+    h = jt @ j
+    if len(fit.stiff):
+        a = fit.forms.jacobian(found)[:, fit.stiff]
+    else:
+        a = np.empty((len(h), 0, h.shape[-1]))
+    return h, g, a
+
+
+def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
+    """Fit every sample, each to its own convergence.
+
+    Parameters
+    ----------
+    fit : Fit
+    start : ndarray, shape (N, n)
+        With every base of the forms positive.
+    natural : ndarray, shape (N, n)
+        Natural size of each unknown, positive.
+
+    Returns
+    -------
+    Solution
+        Samples that fail (singular, outside, out of steps) are not converged;
+        they do not touch the others.
+    """
+    z_all = np.array(start)
+    converged = np.zeros(len(z_all), dtype=bool)
+    rows = np.arange(len(z_all))
+    z, sizes = z_all, natural
+    found = fit.forms.at(z)
+    for _ in range(MOST_STEPS):
+        h, g, a = _matrices(fit, found)
+        system = _system(h, a, fit.compliance, sizes, 0.0)
+        n, c = h.shape[-1], a.shape[1]
+        gap = fit.measured[:, fit.stiff] - found.value[:, fit.stiff]
+        right = system.size * g
+        if c:
+            right = np.concatenate([right, gap / system.gauge], axis=1)
+        solved = solve_stack(system.matrix, right[:, :, None])[:, :, 0]
+        step = solved[:, :n] * system.size
+        sound: BoolArray = np.asarray(np.isfinite(step).all(axis=-1))
+        if not sound.all():
+            step = np.where(sound[:, None], step, 0.0)
+        decrement = ((h @ step[:, :, None])[:, :, 0] * step).sum(axis=-1)
+        relative = (np.abs(step) / sizes).max(axis=-1)
+        multipliers = solved[:, n:] / system.gauge if c else solved[:, n:]
+        z, found, moved = _shortened(fit, z, found, step, multipliers)
+        settled = decrement < SMALL_DECREMENT
+        if c:
+            settled = settled & (relative < SMALL_STEP)
+        done: BoolArray = np.asarray((settled | (relative < ROUNDING_STEP)) & moved & sound)
+        stopped: BoolArray = np.asarray(done | ~moved | ~sound)
+        if not stopped.any():
+            continue
+        z_all[rows] = z
+        converged[rows[done]] = True
+        if stopped.all():
+            return Solution(z_all, converged)
+        going = ~stopped
+        rows, z, sizes, found = rows[going], z[going], sizes[going], found.where(going)
+        fit = fit.samples(going)
+    z_all[rows] = z
+    return Solution(z_all, converged)
+
+
+def _shortened(
+    fit: Fit,
+    z: FloatArray,
+    found: Evaluation,
+    step: FloatArray,
+    multipliers: FloatArray,
+) -> tuple[FloatArray, Evaluation, BoolArray]:
+    """Take the step, halved per sample until the bases are positive and the merit falls."""
+    exact = fit.compliance == 0
+    there = np.isfinite(fit.compliance) & ~exact
+    weight = np.where(there, 1 / np.where(there, fit.compliance, 1.0), 0.0)
+    penalty = np.where(exact, 2 * np.abs(np.nan_to_num(multipliers)), 0.0)
+
+    def merit(of: Evaluation) -> FloatArray:
+        residual = fit.measured - of.value
+        total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
+        if exact.shape[-1]:
+            hard = residual[:, fit.stiff]
+            total = total + (penalty * np.abs(hard) + 0.5 * weight * hard * hard).sum(axis=-1)
+        return total
+
+    before = merit(found)
+    length = np.ones(len(z))
+    trial = z + step
+    tried = fit.forms.at(trial)
+    for _ in range(MOST_HALVINGS):
+        good = tried.inside & (merit(tried) <= before + 1e-9 * (1 + before))
+        if good.all():
+            return trial, tried, good
+        length = np.where(good, length, 0.5 * length)
+        trial = z + length[:, None] * step
+        tried = fit.forms.at(trial)
+    moved = tried.inside
+    return np.where(moved[:, None], trial, z), tried, moved
+
+
+def linear_step(
+    slopes: FloatArray,
+    right: FloatArray,
+    weight: FloatArray,
+    stiff: IntArray,
+    compliance: FloatArray,
+    nominal: FloatArray,
+    ridge: float,
+) -> FloatArray:
+    """Solve linear readings slopes (N, m, n) . z = right (N, m) once, from nothing.
+
+    ``ridge`` pulls weakly towards ``nominal``, where the readings leave z open.
+    """
+    weighted = slopes * weight[:, :, None]
+    transposed = weighted.transpose(0, 2, 1)
+    h, a = transposed @ slopes, slopes[:, stiff]
+    system = _system(h, a, compliance, nominal, ridge)
+    g = (transposed @ right[:, :, None])[:, :, 0]
+    target = system.size * g + ridge * nominal / system.size
+    if len(stiff):
+        gap = np.where(np.isfinite(compliance), right[:, stiff], 0.0)
+        target = np.concatenate([target, gap / system.gauge], axis=1)
+    solved = solve_stack(system.matrix, target[:, :, None])[:, : h.shape[-1], 0]
+    z = solved * system.size
+    return np.where(np.isfinite(z), z, nominal)
+
+
+def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
+    """Covariance of the unknowns, leverage and redundancy of the readings, at a solution."""
+    found = fit.forms.at(z)
+    slopes = fit.forms.jacobian(found)
+    weighted = slopes * np.sqrt(fit.weight)[:, :, None]
+    h = weighted.transpose(0, 2, 1) @ weighted
+    a = slopes[:, fit.stiff]
+    system = _system(h, a, fit.compliance, natural, 0.0)
+    n, c = h.shape[-1], a.shape[1]
+    identity = np.broadcast_to(np.eye(n + c), system.matrix.shape)
+    inverse = solve_stack(system.matrix, identity)
+    scaled = inverse[:, :n, :n]
+    inflation = scaled.diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
+    inflation = np.where(np.isnan(inflation), np.inf, inflation)
+    covariance = scaled * system.size[:, :, None] * system.size[:, None, :]
+    variance = ((slopes @ covariance) * slopes).sum(axis=-1)
+    redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
+    if c:
+        # u^2 (A H^-1 A' + D)^-1 from the corner of the inverse: 1 - leverage without cancellation.
+        corner = -inverse.diagonal(axis1=1, axis2=2)[:, n:]
+        there = np.isfinite(fit.compliance)
+        stiffness = np.where(there, fit.compliance, 0.0) / system.gauge**2
+        redundancy[:, fit.stiff] = np.where(there, stiffness * corner, 0.0)
+        variance[:, fit.stiff] = np.where(
+            there,
+            fit.compliance * (1 - redundancy[:, fit.stiff]),
+            variance[:, fit.stiff],
+        )
+    return Curvature(
+        covariance, np.maximum(variance, 0.0), np.clip(redundancy, 0.0, 1.0), slopes, inflation
+    )

@@ -1,0 +1,347 @@
+"""What goes into a fit: weights, exact readings, natural sizes and a first guess.
+
+Readings enter with weight 1/u^2. A limit enters as the mean and standard
+deviation of a rectangular distribution: of [0, limit] for a non-detect, of
+[limit, 1] for a fraction off scale (GUM, JCGM 100:2008, 4.3.7). A missing
+reading has no weight. Without any flow the key fed is 1 mol/s, exactly.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Fault
+from core.outlet_analysis.account import Account
+from core.outlet_analysis.forms import Forms
+from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
+from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, VOLUME
+
+AS_GOOD_AS_EXACT = 1e-12
+"""Relative uncertainty that rounding of the arithmetic drowns."""
+NEARLY_EXACT = 1e-6
+"""Relative uncertainty below which a weight would drown the others."""
+DEPENDENT = 1e-6
+"""Part of an exact reading that the other exact ones must leave for it to be one of its own."""
+AGREEMENT = 1e-8
+"""Within this, relative, exact readings that say the same thing agree."""
+START_RIDGE = 1e-10
+MOLAR_DENSITY = {"liquid": 2e4, "gas": 40.0}
+"""mol/m3, orders of magnitude for first guesses only."""
+
+
+@dataclass(frozen=True, eq=False)
+class Block:
+    """Readings of N samples as they enter the fit, with the row that fixes the scale.
+
+    Attributes
+    ----------
+    account : Account
+    forms : Forms
+        Over the unknowns: m readings, then the key fed.
+    measured, u : ndarray, shape (N, m + 1)
+        What enters; limits as mean and standard deviation.
+    active : ndarray of bool, shape (N, m + 1)
+    bound : ndarray of int8, shape (N, m + 1)
+    nominal : ndarray, shape (N, n)
+        A plausible value of each unknown.
+    """
+
+    account: Account
+    forms: Forms
+    measured: FloatArray
+    u: FloatArray
+    active: BoolArray
+    bound: NDArray[np.int8]
+    nominal: FloatArray
+
+    @property
+    def exact(self) -> BoolArray:
+        """Which readings are exact, shape (N, m + 1)."""
+        return np.asarray(self.active & (self.u == 0))
+
+
+@dataclass(frozen=True, eq=False)
+class Group:
+    """Samples of a block that share their exact readings and so one shape of fit.
+
+    Attributes
+    ----------
+    rows : ndarray of int
+        Their places in the block.
+    fit : Fit
+    start : ndarray, shape (len(rows), n)
+    natural : ndarray, shape (len(rows), n)
+        Size of each unknown: that of the largest flow, or its own.
+    dependent : ndarray of int
+        Exact readings left out because the others imply them.
+    """
+
+    rows: IntArray
+    fit: Fit
+    start: FloatArray
+    natural: FloatArray
+    dependent: IntArray
+
+
+def prepare(account: Account, rows: slice) -> Block:
+    """Return the samples ``rows`` of the account's readings, ready to be fitted."""
+    readings = account.readings
+    value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
+    active = np.isfinite(value)
+    measured, sigma = np.where(active, value, 0.0), np.where(active, u, 1.0)
+    if bound.any():
+        below, above = bound == BELOW, bound == ABOVE
+        off_scale = above & readings.share
+        measured = np.where(below, value / 2, np.where(off_scale, (1 + value) / 2, measured))
+        sigma = np.where(below, value, np.where(off_scale, 1 - value, sigma * 12**0.5)) / 12**0.5
+        active &= ~above | off_scale
+        measured, sigma = np.where(active, measured, 0.0), np.where(active, sigma, 1.0)
+
+    sigma = np.where(sigma <= AS_GOOD_AS_EXACT * np.abs(measured), 0.0, sigma)
+    flowing = (active & readings.flow & (measured != 0)).any(axis=1)
+    column = np.ones((len(measured), 1))
+    measured = np.concatenate([measured, column], axis=1)
+    sigma = np.concatenate([sigma, 0 * column], axis=1)
+    active = np.concatenate([active, ~flowing[:, None]], axis=1)
+    bound = np.concatenate([bound, np.zeros((len(bound), 1), dtype=np.int8)], axis=1)
+
+    forms = readings.forms.samples(rows).through(account.stream_map)
+    constants = forms.constants
+    forms = Forms(
+        np.concatenate([constants, np.ones((*constants.shape[:-1], 1))], axis=-1),
+        np.concatenate([forms.numerators, account.feed_map[[account.problem.key]]]),
+        forms.bases,
+        np.concatenate([forms.exponents, np.zeros((1, forms.exponents.shape[1]))]),
+    )
+    block = Block(account, forms, measured, sigma, active, bound, np.empty(0))
+    return Block(account, forms, measured, sigma, active, bound, _nominal(block))
+
+
+def _nominal(block: Block) -> FloatArray:
+    """Orders of magnitude of every unknown from single readings, shape (N, n)."""
+    account, measured, active = block.account, block.measured, block.active
+    readings, streams = account.readings, account.streams
+    count = len(account.problem.reactions.substances)
+    constants = readings.forms.constants
+    flow = np.zeros(len(measured))
+    for row in np.flatnonzero(readings.flow).tolist():
+        stream = streams[int(readings.stream[row])]
+        numerator = readings.forms.numerators[row]
+        counted = numerator[: len(streams) * count]
+        if readings.forms.exponents[row].any() or not counted.any():
+            per_mole = np.asarray(1 / MOLAR_DENSITY[stream.phase])
+        else:
+            per_mole = np.asarray(counted[counted != 0].mean() * constants[..., row])
+        flow = np.maximum(flow, np.where(active[:, row], np.abs(measured[:, row]) / per_mole, 0.0))
+    flow = np.where(flow > 0, flow, 1.0)
+
+    kinds = [unknown.kind for unknown in account.unknowns]
+    share = 1 / max(1, kinds.count("flow"))
+    nominal = np.empty((len(measured), len(kinds)))
+    for column, unknown in enumerate(account.unknowns):
+        if unknown.kind == "flow":
+            nominal[:, column] = flow * share
+        elif unknown.kind == "extent":
+            nominal[:, column] = 0.05 * flow * share
+        elif unknown.kind == "volume":
+            nominal[:, column] = _volume(block, unknown.stream, flow)
+        elif unknown.kind == "scale":
+            of = readings.stream == unknown.stream
+            peaks = of & ~readings.flow & (readings.cleared >= 0)
+            values = np.where(active[:, :-1] & peaks, measured[:, :-1], 0.0).sum(axis=1)
+            nominal[:, column] = np.where(values > 0, values, 1.0)
+        else:
+            reading = getattr(streams[unknown.stream], unknown.kind)
+            row = readings.subjects.index(reading.subject)
+            usual = 300.0 if unknown.kind == "temperature" else 1e5
+            nominal[:, column] = np.where(active[:, row], measured[:, row], usual)
+    return nominal
+
+
+def _volume(block: Block, g: int, flow: FloatArray) -> FloatArray:
+    """Order of magnitude of a stream's volumetric flow, shape (N,)."""
+    account, active, measured = block.account, block.active, block.measured
+    readings, count = account.readings, len(account.problem.reactions.substances)
+    of = readings.stream == g
+    place = len(account.streams) * count + g * FURTHER + VOLUME
+    direct = of & readings.flow & (readings.forms.numerators[:, place] != 0)
+    guess = flow / MOLAR_DENSITY[account.streams[g].phase]
+    for row in np.flatnonzero(direct).tolist():
+        guess = np.where(active[:, row] & (measured[:, row] > 0), measured[:, row], guess)
+    return guess
+
+
+def linearised(block: Block) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Readings as linear equations: slopes (N, r, n), right side and u (N, r).
+
+    A ratio is multiplied out, (a - y b) . z = 0, and what a thermometer, a
+    pressure gauge or the sum of the peaks states beforehand is put in.
+    """
+    readings, forms, nominal = block.account.readings, block.forms, block.nominal
+    base = nominal @ forms.bases.T
+    base = np.where(base > 0, base, 1.0)
+    known = forms.exponents * readings.known
+    factor = forms.constants * np.exp(np.log(base) @ known.T)
+    slopes = factor[:, :, None] * forms.numerators
+    right, u = np.array(block.measured), np.array(block.u)
+    ratios = np.flatnonzero(readings.cleared >= 0)
+    cleared = readings.cleared[ratios]
+    slopes[:, ratios] -= block.measured[:, ratios, None] * forms.bases[cleared]
+    right[:, ratios] = 0.0
+    u[:, ratios] *= base[:, cleared]
+    return slopes, right, u
+
+
+def groups(block: Block) -> Iterator[Group | tuple[IntArray, Fault]]:
+    """Split a block by which readings are exact; each with its fit and first guess.
+
+    Exact readings that cannot hold together come as the fault that says so.
+    """
+    exact = block.exact
+    if (exact == exact[0]).all():
+        yield _group(block, np.arange(len(exact)))
+        return
+    _, which = np.unique(np.packbits(exact, axis=1), axis=0, return_inverse=True)
+    which = which.reshape(-1)
+    for label in range(int(which.max()) + 1):
+        yield _group(block, np.flatnonzero(which == label))
+
+
+def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
+    whole = len(rows) == len(block.measured)
+    if not whole:
+        forms = block.forms
+        if forms.constants.ndim > 1:
+            forms = Forms(forms.constants[rows], forms.numerators, forms.bases, forms.exponents)
+        block = Block(
+            block.account,
+            forms,
+            block.measured[rows],
+            block.u[rows],
+            block.active[rows],
+            block.bound[rows],
+            block.nominal[rows],
+        )
+    slopes, right, u = linearised(block)
+    exact = np.flatnonzero(block.exact[0])
+    kept, dependent = exact, np.empty(0, dtype=np.intp)
+    if len(exact):
+        found = _independent(block, slopes[0], right[0], exact)
+        if isinstance(found, Fault):
+            return rows, found
+        kept, dependent = found
+
+    size = np.abs(block.measured)
+    nearly = block.active & (block.u > 0) & (block.u < NEARLY_EXACT * size)
+    stiff = np.union1d(kept, np.flatnonzero(nearly.any(axis=0))).astype(np.intp)
+    soft = block.active.copy()
+    soft[:, stiff] = False
+    soft[:, dependent] = False
+    positive = np.where(soft, block.u, 1.0)
+    weight = np.where(soft, 1 / positive**2, 0.0)
+    there = block.active[:, stiff]
+    fit = Fit(
+        block.forms,
+        block.measured,
+        weight,
+        stiff,
+        np.where(there, block.u[:, stiff] ** 2, np.inf),
+    )
+    start_weight = np.where(soft, 1 / np.where(soft, u, 1.0) ** 2, 0.0)
+    start = linear_step(
+        slopes,
+        right,
+        start_weight,
+        stiff,
+        np.where(there, u[:, stiff] ** 2, np.inf),
+        block.nominal,
+        START_RIDGE,
+    )
+    start = _inside(block, start)
+    return Group(rows, fit, start, natural_size(block.account, start), dependent)
+
+
+def _inside(block: Block, start: FloatArray) -> FloatArray:
+    """Draw a first guess towards the nominal one until every base is positive."""
+    bases = block.forms.bases
+    if not len(bases):
+        return start
+    base, usual = start @ bases.T, block.nominal @ bases.T
+    least = 0.05 * usual
+    low = (base < least) & (usual > 0)
+    if not low.any():
+        return start
+    share = np.where(low, (usual - least) / np.where(low, usual - base, 1.0), 1.0).min(axis=1)
+    return np.asarray(block.nominal + share[:, None] * (start - block.nominal))
+
+
+def natural_size(account: Account, z: FloatArray) -> FloatArray:
+    """Size of each unknown: of flows and extents that of the largest flow; (N, n)."""
+    count = len(account.streams) * len(account.problem.reactions.substances)
+    largest = np.abs(z @ account.stream_map[:count].T).max(axis=1)
+    largest = np.where(largest > 0, largest, 1.0)
+    own = np.array([unknown.kind not in ("flow", "extent") for unknown in account.unknowns])
+    size = np.broadcast_to(largest[:, None], z.shape)
+    if own.any():
+        size = np.where(own & (z != 0), np.abs(z), size)
+    return size
+
+
+def _independent(
+    block: Block, slopes: FloatArray, right: FloatArray, exact: IntArray
+) -> tuple[IntArray, IntArray] | Fault:
+    """Exact readings to be met, and those that follow from them; or their conflict."""
+    size = block.nominal[0]
+    kept: list[int] = []
+    dependent: list[int] = []
+    directions: list[FloatArray] = []
+    for row in exact.tolist():
+        scaled = slopes[row] * size
+        length = float(np.linalg.norm(scaled))
+        if not length:
+            if block.measured[0, row] != 0:
+                return conflict(block.account, [row])
+            dependent.append(row)
+            continue
+        rest = scaled / length
+        for direction in directions:
+            rest = rest - (rest @ direction) * direction
+        left = float(np.linalg.norm(rest))
+        if left > DEPENDENT:
+            kept.append(row)
+            directions.append(rest / left)
+        else:
+            dependent.append(row)
+    if not kept:
+        return np.array(kept, dtype=np.intp), np.array(dependent, dtype=np.intp)
+    # Does what is exact force the total of some analysed stream to nothing?
+    basis = np.array(directions)
+    scaled = slopes[kept] * size
+    point = np.linalg.lstsq(scaled, right[kept], rcond=None)[0]
+    seen = np.flatnonzero((block.forms.exponents[block.active[0]] != 0).any(axis=0))
+    for base in block.forms.bases[seen] * size:
+        free = base - basis.T @ (basis @ base)
+        if np.linalg.norm(free) < DEPENDENT * np.linalg.norm(base) and base @ point < AGREEMENT * (
+            np.abs(base).sum()
+        ):
+            return conflict(block.account, kept)
+    return np.array(kept, dtype=np.intp), np.array(dependent, dtype=np.intp)
+
+
+def conflict(account: Account, rows: list[int]) -> Fault:
+    """Return the fault of exact readings that contradict one another."""
+    subjects = account.readings.subjects
+    named = [row for row in rows if row < len(subjects)]
+    words = ", ".join("/".join(map(str, subjects[row])) for row in named)
+    return Fault(
+        "exact-readings-conflict",
+        subjects[named[-1]] if named else ("key",),
+        "the readings stated as exact cannot all be true together: {readings}. Give those that"
+        " were measured their uncertainty, or mend the value that is wrong",
+        {"readings": words or "the flow of the key"},
+    )

@@ -1,0 +1,516 @@
+"""From metered streams to forms: what each reading counts, and against what.
+
+The forms are written over the *stream space*: the flows of every substance in
+every metered stream, one block of S for each, then four more quantities a
+stream (volumetric flow, temperature, pressure, scale of a normalised
+analysis). Which unknowns stand behind them is the account's affair
+(:mod:`core.outlet_analysis.account`), so the same forms serve the reconciled
+account and the one that leaves feed and outlet unconnected.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
+from typing import Final
+
+import numpy as np
+from numpy.typing import NDArray
+
+from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
+from core.errors import Amount, Subject, refuse
+from core.outlet_analysis.forms import Forms
+from core.reactions.reaction_set import ReactionSet
+from core.streams.metered import Analysis, FlowReading, Measurement, MeteredStream
+
+BELOW: Final = -1
+ABOVE: Final = 1
+"""Kinds of limit, sample by sample; 0 is a reading proper."""
+
+VOLUME, TEMPERATURE, PRESSURE, SCALE = range(4)
+"""Places of a stream's further quantities in the stream space."""
+FURTHER = 4
+
+
+@dataclass(frozen=True, eq=False)
+class Series:
+    """What one instrument read over N samples, in place of its single reading.
+
+    Attributes
+    ----------
+    value, u : ndarray, shape (N,)
+        SI; not a number where the reading is missing.
+    bound : ndarray of int8, shape (N,), or None
+        ``BELOW``, ``ABOVE`` or 0; None where all are readings proper.
+    molar_volume : ndarray, shape (N,), or None
+        m3/mol at a gas meter's own conditions, where they vary.
+    """
+
+    value: FloatArray
+    u: FloatArray
+    bound: NDArray[np.int8] | None = None
+    molar_volume: FloatArray | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Readings:
+    """Every reading of a set of metered streams.
+
+    Attributes
+    ----------
+    subjects : tuple of Subject, length m
+    forms : Forms
+        Over the stream space.
+    measured, u : ndarray, shape (N, m)
+        As read, SI; not a number where missing.
+    bound : ndarray of int8, shape (N, m)
+        ``BELOW``, ``ABOVE`` or 0.
+    share : ndarray of bool, shape (m,)
+        A fraction, which cannot exceed 1.
+    flow : ndarray of bool, shape (m,)
+        Tells how much flows, not only ratios.
+    stream : ndarray of int, shape (m,)
+        The stream that it is a reading of.
+    cleared : ndarray of int, shape (m,)
+        The base that the linearised reading is multiplied with, or -1.
+    known : ndarray of bool, shape (q,)
+        Bases whose value a reading states beforehand: temperature, pressure, scale.
+    used : frozenset of (stream, quantity)
+        Further quantities that some reading speaks of.
+    samples : int or None
+        N; None for a single sample given without a sample axis.
+    """
+
+    subjects: tuple[Subject, ...]
+    forms: Forms
+    measured: FloatArray
+    u: FloatArray
+    bound: NDArray[np.int8]
+    share: BoolArray
+    flow: BoolArray
+    stream: NDArray[np.intp]
+    cleared: NDArray[np.intp]
+    known: BoolArray
+    used: frozenset[tuple[int, int]]
+    samples: int | None
+
+
+def describe_stream(streams: tuple[MeteredStream, ...], feeds: int, g: int) -> str:
+    """Return the words for stream ``g`` of feeds followed by outlets."""
+    role, first, count = (
+        ("feed", 0, feeds) if g < feeds else ("outlet", feeds, len(streams) - feeds)
+    )
+    return f"the {role}" if count == 1 else f"{role} stream {g - first + 1}"
+
+
+@dataclass
+class ReadingWriter:
+    """Writes readings of metered streams as forms over the stream space."""
+
+    reactions: ReactionSet
+    streams: tuple[MeteredStream, ...]
+    feeds: int
+    series: Mapping[Subject, Series] = field(default_factory=dict)
+    numerators: list[FloatArray] = field(default_factory=list)
+    powers: list[list[tuple[int, float]]] = field(default_factory=list)
+    constants: list[float | FloatArray] = field(default_factory=list)
+    measurements: list[Measurement] = field(default_factory=list)
+    share: list[bool] = field(default_factory=list)
+    flow: list[bool] = field(default_factory=list)
+    stream_of: list[int] = field(default_factory=list)
+    cleared: list[int] = field(default_factory=list)
+    bases: list[FloatArray] = field(default_factory=list)
+    known: list[bool] = field(default_factory=list)
+    used: set[tuple[int, int]] = field(default_factory=set)
+
+    def __post_init__(self) -> None:
+        self.count = len(self.reactions.substances)
+        self.masses = self.reactions.molar_masses
+        self.ones = np.ones(self.count)
+        self.width = len(self.streams) * (self.count + FURTHER)
+        self.base_index: dict[tuple[int | str, ...], int] = {}
+        self.own = [self.own_phase(stream) for stream in self.streams]
+
+    # The stream space.
+
+    def own_phase(self, stream: MeteredStream) -> FloatArray:
+        """Weights 1 of the substances that a total of the stream counts, else 0.
+
+        What is stated to be of another phase travels with the stream but is
+        not part of it, unless its own analysis reads it.
+        """
+        read = set[int]()
+        if stream.analysis is not None:
+            read.update(*(component.weights for component in stream.analysis.components))
+        return np.array(
+            [
+                1.0 if substance.phase in (None, stream.phase) or i in read else 0.0
+                for i, substance in enumerate(self.reactions.substances)
+            ]
+        )
+
+    def flows(self, g: int, weights: FloatArray) -> FloatArray:
+        """Return the form that weighs the flows of stream ``g``."""
+        form = np.zeros(self.width)
+        form[g * self.count : (g + 1) * self.count] = weights
+        return form
+
+    def further(self, g: int, quantity: int) -> FloatArray:
+        """Return the form that is a further quantity of stream ``g``."""
+        self.used.add((g, quantity))
+        form = np.zeros(self.width)
+        form[len(self.streams) * self.count + g * FURTHER + quantity] = 1.0
+        return form
+
+    def base(self, name: tuple[int | str, ...], form: FloatArray, known: bool = False) -> int:
+        """Return the index of a base, entered once."""
+        if name not in self.base_index:
+            self.base_index[name] = len(self.bases)
+            self.bases.append(form)
+            self.known.append(known)
+        return self.base_index[name]
+
+    def further_base(self, g: int, quantity: int) -> int:
+        """Return the index of the base that is a further quantity of stream ``g``."""
+        return self.base((g, quantity), self.further(g, quantity), quantity != VOLUME)
+
+    def sampled(self, g: int, weights: FloatArray) -> FloatArray:
+        """Weights on the stream's flows of what the analyser saw of it.
+
+        Only substances of the stream's own phase have a share in what is left
+        of a removed one. A removed substance of residual r is r of the moles left, so each mole
+        of the others brings r/(1 - sum of residuals) of it.
+        """
+        analysis = self.streams[g].analysis
+        if analysis is None or not analysis.removed:
+            return weights
+        left = 1 - sum(removal.residual for removal in analysis.removed)
+        brought = sum(
+            weights[removal.substance] * removal.residual / left for removal in analysis.removed
+        )
+        seen = weights + brought * self.own[g]
+        for removal in analysis.removed:
+            seen[removal.substance] = 0.0
+        return np.asarray(seen)
+
+    def sample_total(self, g: int, weights: FloatArray, name: str) -> int:
+        """Return the index of the base that is the total of what was analysed."""
+        total = self.flows(g, self.sampled(g, weights * self.own[g]))
+        return self.base((g, name, "sample"), total)
+
+    def stream_total(self, g: int) -> int:
+        """Return the index of the base that is the total of the whole stream."""
+        return self.base((g, "amount", "whole"), self.flows(g, self.own[g]))
+
+    def has_conditions(self, g: int) -> bool:
+        """Whether stream ``g`` is a gas whose volume follows from its T and P."""
+        stream = self.streams[g]
+        return (
+            stream.phase == "gas" and stream.temperature is not None and stream.pressure is not None
+        )
+
+    # Readings.
+
+    def add(
+        self,
+        g: int,
+        measurement: Measurement,
+        numerator: FloatArray,
+        powers: Iterable[tuple[int, float]] = (),
+        *,
+        constant: float | FloatArray = 1.0,
+        cleared: int = -1,
+        share: bool = False,
+        flow: bool = False,
+    ) -> None:
+        """Enter one reading of stream ``g``."""
+        self.stream_of.append(g)
+        self.measurements.append(measurement)
+        self.numerators.append(numerator)
+        self.powers.append(list(powers))
+        self.constants.append(constant)
+        self.cleared.append(cleared)
+        self.share.append(share)
+        self.flow.append(flow)
+
+    def stream(self, g: int) -> None:
+        """Enter every reading of stream ``g`` but its temperature and pressure."""
+        stream = self.streams[g]
+        for reading in stream.flows:
+            self.flow_reading(g, reading)
+        if stream.density is not None:
+            self.density(g, stream.density)
+        if stream.analysis is not None:
+            self.analysis(g, stream.analysis)
+
+    def conditions(self) -> None:
+        """Enter the temperatures and pressures that the readings so far speak of."""
+        for g, stream in enumerate(self.streams):
+            for quantity, reading in (
+                (TEMPERATURE, stream.temperature),
+                (PRESSURE, stream.pressure),
+            ):
+                if reading is not None and (g, quantity) in self.used:
+                    self.add(g, reading, self.further(g, quantity))
+
+    def flow_reading(self, g: int, reading: FlowReading) -> None:
+        """Enter a flow meter's reading."""
+        stream = self.streams[g]
+        weights = self.masses if reading.kind == "mass" else self.ones
+        if reading.substance is None:
+            weights = weights * self.own[g]
+        else:
+            weights = np.where(np.arange(self.count) == reading.substance, weights, 0.0)
+        if reading.as_analysed:
+            weights = self.sampled(g, weights)
+        of_volume = reading.kind == "volume"
+        if of_volume and stream.phase == "liquid":
+            if reading.substance is not None:
+                raise refuse(
+                    "liquid-volume-of-substance",
+                    reading.measurement.subject,
+                    "found a volumetric flow of one substance of a liquid, whose volume is not"
+                    " known; state the volumetric flow of the whole liquid, or a molar or mass"
+                    " flow of the substance",
+                )
+            self.add(g, reading.measurement, self.further(g, VOLUME), flow=True)
+            return
+        form = self.flows(g, weights)
+        of_series = self.series.get(reading.measurement.subject)
+        molar_volume: float | FloatArray | None = reading.molar_volume
+        if of_series is not None and of_series.molar_volume is not None:
+            molar_volume = of_series.molar_volume
+        if of_volume and molar_volume is not None:
+            self.add(g, reading.measurement, form, constant=molar_volume, flow=True)
+        elif of_volume and self.has_conditions(g):
+            powers = [
+                (self.further_base(g, TEMPERATURE), 1.0),
+                (self.further_base(g, PRESSURE), -1.0),
+            ]
+            constant = stream.compressibility * GAS_CONSTANT
+            self.add(g, reading.measurement, form, powers, constant=constant, flow=True)
+        elif of_volume:
+            if reading.substance is not None:
+                raise refuse(
+                    "meter-conditions-missing",
+                    reading.measurement.subject,
+                    "found a volumetric flow of one substance of a gas; it needs the temperature"
+                    " and pressure that the volume is counted at",
+                )
+            powers = []
+            if reading.as_analysed and stream.analysis is not None and stream.analysis.removed:
+                sample = self.sample_total(g, self.ones, "amount")
+                powers = [(sample, 1.0), (self.stream_total(g), -1.0)]
+            self.add(g, reading.measurement, self.further(g, VOLUME), powers, flow=True)
+        else:
+            self.add(g, reading.measurement, form, flow=True)
+
+    def density(self, g: int, reading: Measurement) -> None:
+        """Enter the density of a liquid: mass over volume."""
+        volume = self.further_base(g, VOLUME)
+        self.add(g, reading, self.flows(g, self.masses * self.own[g]), [(volume, -1.0)], cleared=volume)
+
+    def analysis(self, g: int, analysis: Analysis) -> None:
+        """Enter every value of an analysis."""
+        if analysis.removed:
+            self.check_removals(analysis)
+        if analysis.basis == "volume" and self.streams[g].phase == "liquid":
+            raise refuse(
+                "liquid-volume-basis",
+                analysis.subject,
+                "found an analysis of a liquid by volume, and the volumes of its substances are"
+                " not known; state it by mole, by mass or as concentrations",
+            )
+        by_mass = analysis.basis in ("mass", "mass-concentration")
+        weights = self.masses if by_mass else self.ones
+        forms = [
+            self.flows(g, self.sampled(g, self.component(component.weights, weights)))
+            for component in analysis.components
+        ]
+        total = "mass" if by_mass else "amount"
+        share = False
+        constant = 1.0
+        if analysis.normalised:
+            # The total of the peaks stands for whatever they were scaled by.
+            cleared = self.base((g, "peaks"), np.sum(forms, axis=0))
+            powers = [(cleared, -1.0), (self.further_base(g, SCALE), 1.0)]
+        elif analysis.basis in ("concentration", "mass-concentration"):
+            constant, powers, cleared = self.per_volume(g, analysis)
+        else:
+            cleared = self.sample_total(g, weights, total)
+            powers = [(cleared, -1.0)]
+            share = True
+        for component, form in zip(analysis.components, forms, strict=True):
+            whole = share and all(weight <= 1 for weight in component.weights.values())
+            self.add(
+                g,
+                component.measurement,
+                form,
+                powers,
+                constant=constant,
+                cleared=cleared,
+                share=whole,
+            )
+
+    def component(self, shares: Mapping[int, float], weights: FloatArray) -> FloatArray:
+        """Weights of the substances under one value of an analysis."""
+        found = np.zeros(self.count)
+        for substance, share in shares.items():
+            found[substance] = share * weights[substance]
+        return found
+
+    def per_volume(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+        """Constant, powers and cleared base of a concentration."""
+        stream = self.streams[g]
+        if stream.phase == "liquid" and analysis.removed:
+            raise refuse(
+                "liquid-concentration-removal",
+                analysis.subject,
+                "found concentrations of a liquid from which substances were removed, which"
+                " changes its volume by what is not known; state fractions, or the"
+                " concentrations of the whole liquid",
+            )
+        if self.has_conditions(g):
+            sample = self.sample_total(g, self.ones, "amount")
+            powers = [
+                (sample, -1.0),
+                (self.further_base(g, PRESSURE), 1.0),
+                (self.further_base(g, TEMPERATURE), -1.0),
+            ]
+            return 1 / (stream.compressibility * GAS_CONSTANT), powers, sample
+        volume = self.further_base(g, VOLUME)
+        powers = [(volume, -1.0)]
+        if analysis.removed:
+            sample = self.sample_total(g, self.ones, "amount")
+            powers += [(sample, -1.0), (self.stream_total(g), 1.0)]
+        return 1.0, powers, volume
+
+    def check_removals(self, analysis: Analysis) -> None:
+        """Refuse removals that leave no sample, and values of what was removed."""
+        left = sum(removal.residual for removal in analysis.removed)
+        if left >= 1 or any(removal.residual < 0 for removal in analysis.removed):
+            raise refuse(
+                "removal-residual",
+                analysis.subject,
+                "found residuals of the removed substances that sum to {found}; they are mole"
+                " fractions of the sample, each 0 or more and together below 1",
+                found=Amount(left),
+            )
+        gone = {removal.substance for removal in analysis.removed}
+        for component in analysis.components:
+            if gone.issuperset(component.weights):
+                names = ", ".join(self.reactions.names[i] for i in component.weights)
+                raise refuse(
+                    "removed-substance-read",
+                    component.measurement.subject,
+                    "found a value of {substance}, which the same analysis lists as removed"
+                    " before the analyser; leave out one of the two",
+                    substance=names,
+                )
+
+    def forms(self) -> Forms:
+        """Return the forms of all readings entered, over the stream space."""
+        m, q = len(self.numerators), len(self.bases)
+        exponents = np.zeros((m, q))
+        for row, powers in enumerate(self.powers):
+            for base, power in powers:
+                exponents[row, base] += power
+        constants = (
+            np.array(self.constants, dtype=float)
+            if all(np.ndim(c) == 0 for c in self.constants)
+            else np.stack(np.broadcast_arrays(*self.constants), axis=-1).astype(float)
+        )
+        return Forms(
+            constants,
+            np.array(self.numerators).reshape(m, self.width),
+            np.array(self.bases).reshape(q, self.width),
+            exponents,
+        )
+
+
+def read(
+    reactions: ReactionSet,
+    streams: tuple[MeteredStream, ...],
+    feeds: int,
+    series: Mapping[Subject, Series],
+) -> tuple[Readings, ReadingWriter]:
+    """Write every reading of feeds followed by outlets as a form.
+
+    Returns
+    -------
+    Readings
+    ReadingWriter
+        For writing further readings that could be made of the same streams.
+
+    Raises
+    ------
+    Refused
+        A reading that cannot be put as a form, or whose uncertainty or limit
+        makes no sense.
+    """
+    writer = ReadingWriter(reactions, streams, feeds, series)
+    for g in range(len(streams)):
+        writer.stream(g)
+    writer.conditions()
+    samples = len(next(iter(series.values())).value) if series else None
+    n, m = samples or 1, len(writer.measurements)
+    if samples == 0:
+        n = 0
+    measured, u = np.empty((n, m)), np.empty((n, m))
+    bound = np.zeros((n, m), dtype=np.int8)
+    for column, reading in enumerate(writer.measurements):
+        found = series.get(reading.subject)
+        if found is None:
+            measured[:, column] = reading.value
+            u[:, column] = reading.u
+            bound[:, column] = {None: 0, "below": BELOW, "above": ABOVE}[reading.bound]
+        else:
+            measured[:, column] = found.value
+            u[:, column] = found.u
+            bound[:, column] = 0 if found.bound is None else found.bound
+    measured = np.where(np.isfinite(measured), measured, np.nan)
+    readings = Readings(
+        subjects=tuple(reading.subject for reading in writer.measurements),
+        forms=writer.forms(),
+        measured=measured,
+        u=u,
+        bound=bound,
+        share=np.array(writer.share, dtype=bool),
+        flow=np.array(writer.flow, dtype=bool),
+        stream=np.array(writer.stream_of, dtype=np.intp),
+        cleared=np.array(writer.cleared, dtype=np.intp),
+        known=np.array(writer.known, dtype=bool),
+        used=frozenset(writer.used),
+        samples=samples,
+    )
+    _check(readings)
+    return readings, writer
+
+
+def _check(readings: Readings) -> None:
+    there = np.isfinite(readings.measured)
+    with np.errstate(invalid="ignore"):
+        wrong = there & (readings.bound == 0) & ~(np.isfinite(readings.u) & (readings.u >= 0))
+    if wrong.any():
+        row, column = np.argwhere(wrong)[0]
+        raise refuse(
+            "uncertainty-out-of-range",
+            readings.subjects[column],
+            "found a standard uncertainty of {found}; it must be a finite number, 0 or more"
+            " (0 is exact)",
+            found=Amount(float(readings.u[row, column])),
+        )
+    limited = there & (readings.bound != 0)
+    if limited.any():
+        above = (readings.bound == ABOVE) & readings.share & (readings.measured >= 1)
+        wrong = limited & ((readings.measured <= 0) | above)
+        if wrong.any():
+            row, column = np.argwhere(wrong)[0]
+            raise refuse(
+                "limit-out-of-range",
+                readings.subjects[column],
+                "found the limit {found}; a limit lies above 0, and that of a fraction off scale"
+                " below 1",
+                found=Amount(float(readings.measured[row, column])),
+            )

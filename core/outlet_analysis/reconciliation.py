@@ -1,0 +1,246 @@
+"""The account that fits the readings best.
+
+One weighted least-squares estimation answers everything: where the readings
+just suffice it solves for the account, where they are more it reconciles them
+and tests them. A series is estimated in blocks, all samples of a block at once.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import fields, replace
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.special import chdtrc
+
+from core.arrays import FloatArray
+from core.errors import Fault, Refused
+from core.outlet_analysis.account import Account, AccountProblem, build_account
+from core.outlet_analysis.estimate import Estimate, ReadingTable
+from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
+from core.outlet_analysis.preparation import Block, prepare
+from core.outlet_analysis.readings import BELOW
+from core.outlet_analysis.remarks import remarks
+from core.outlet_analysis.solving import Fitted, fit_block
+from core.outlet_analysis.testing import (
+    DETECTABLE,
+    NO_REDUNDANCY,
+    Examined,
+    WithoutSuspects,
+    examine,
+    suspects,
+    without_suspects,
+)
+from core.reactions.reaction_set import ReactionSet
+from core.streams.metered import MeteredStream
+
+BLOCK = 2048
+"""Samples estimated at once: enough to fill the processor, few enough to stay in its cache."""
+
+
+def estimate(problem: AccountProblem) -> Estimate:
+    """Find the account that fits the readings best.
+
+    Parameters
+    ----------
+    problem : AccountProblem
+        Its measurements are single values, or series of N samples.
+
+    Returns
+    -------
+    Estimate
+
+    Raises
+    ------
+    Refused
+        A problem that cannot be put (see
+        :func:`core.outlet_analysis.account.build_account`); for a single
+        sample also ``under-determined``, ``exact-readings-conflict`` and
+        ``not-converged``, which in a series stand in ``failed``.
+    """
+    return joined(list(estimates(problem)))
+
+
+def estimate_feed(
+    reactions: ReactionSet, key: int, feed: tuple[MeteredStream, ...], batch: bool = False
+) -> Estimate:
+    """Find the feed that fits its own readings best; see :func:`estimate`."""
+    return estimate(AccountProblem(reactions, key, feed, (), batch))
+
+
+def estimates(problem: AccountProblem) -> Iterator[Estimate]:
+    """Estimate a long series block by block, each with its samples' own axis.
+
+    The sample numbers in ``failed`` count within the block.
+    """
+    account = build_account(problem)
+    samples = account.readings.samples
+    if samples is None:
+        yield _single(_estimate_block(account, slice(0, 1)))
+        return
+    for first in range(0, max(samples, 1), BLOCK):
+        yield _estimate_block(account, slice(first, min(first + BLOCK, samples)))
+
+
+def _reported(account: Account) -> FloatArray:
+    if not account.problem.outlet:
+        return account.feed_map
+    return np.concatenate([account.feed_map, account.outlet_map, account.extent_map])
+
+
+def _estimate_block(account: Account, rows: slice) -> Estimate:
+    block = prepare(account, rows)
+    readings = account.readings
+    n, m, samples = len(account.unknowns), len(readings.subjects), len(block.measured)
+    limits = block.active & (block.bound != 0)
+    out = _Results(samples, n, m)
+    failed: dict[int, Fault] = {}
+    without: tuple[WithoutSuspects, ...] = ()
+    for outcome in fit_block(block, _reported(account)):
+        if not isinstance(outcome, Fitted):
+            failed.update((int(row), outcome[1]) for row in outcome[0])
+            continue
+        at, fit = outcome.rows, outcome.fit
+        extra = fit.measured.shape[1] - m - 1
+        u = np.pad(block.u[at], ((0, 0), (0, extra)))
+        loosened = np.pad(limits[at], ((0, 0), (0, extra)))
+        seen = examine(fit, outcome.z, outcome.natural, u, loosened)
+        sets = np.zeros((len(at), m), dtype=np.intp)
+        if seen.failing.any():
+            sets, chosen = suspects(outcome, seen, u, loosened, m)
+            if readings.samples is None:
+                without = without_suspects(outcome, chosen[0])
+        out.fill(at, outcome.z, seen, sets, m)
+        for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
+            failed[int(at[row])] = _told_apart(account)
+    out.blank(sorted(failed))
+    result = Estimate(
+        account=account,
+        z=out.z,
+        covariance=out.covariance,
+        readings=_table(block, readings.measured[rows], readings.u[rows], out),
+        chi_square=out.chi_square,
+        degrees_of_freedom=out.freedom,
+        limit=out.limit,
+        p_value=np.where(
+            out.freedom > 0, chdtrc(np.maximum(out.freedom, 1), out.chi_square), np.nan
+        ),
+        inconsistent=out.chi_square > out.limit,
+        per_mole_of_key=block.active[:, m],
+        inflation=out.inflation,
+        without_suspects=without,
+        failed=failed,
+    )
+    return replace(result, notes=tuple(remarks(result)))
+
+
+def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> ReadingTable:
+    bound: NDArray[np.int8] = block.bound[:, :-1]
+    there, limited = np.isfinite(measured), bound != 0
+    redundancy = np.where(limited | ~there, np.nan, out.redundancy)
+    checked = redundancy > NO_REDUNDANCY
+    detectable = DETECTABLE * u / np.sqrt(np.where(checked, redundancy, 1.0))
+    inside = np.where(bound == BELOW, out.reconciled <= measured, out.reconciled >= measured)
+    known = limited & there & np.isfinite(out.reconciled)
+    return ReadingTable(
+        subjects=block.account.readings.subjects,
+        measured=measured,
+        u=np.where(limited | ~there, np.nan, u),
+        bound=bound,
+        reconciled=out.reconciled,
+        reconciled_u=out.reconciled_u,
+        adjustment_over_u=out.adjustment,
+        redundancy=redundancy,
+        smallest_detectable_error=np.where(checked, detectable, np.nan),
+        suspect_set=out.sets,
+        within_limit=np.where(known, inside, -1).astype(np.int8),
+    )
+
+
+class _Results:
+    """Arrays of a block's results, to be filled fit by fit."""
+
+    def __init__(self, samples: int, n: int, m: int) -> None:
+        self.z = np.full((samples, n), np.nan)
+        self.covariance = np.full((samples, n, n), np.nan)
+        self.reconciled = np.full((samples, m), np.nan)
+        self.reconciled_u = np.full((samples, m), np.nan)
+        self.adjustment = np.full((samples, m), np.nan)
+        self.redundancy = np.full((samples, m), np.nan)
+        self.chi_square = np.full(samples, np.nan)
+        self.limit = np.full(samples, np.nan)
+        self.inflation = np.full(samples, np.nan)
+        self.freedom = np.zeros(samples, dtype=np.intp)
+        self.sets = np.zeros((samples, m), dtype=np.intp)
+
+    def fill(self, at: IntArray, z: FloatArray, seen: Examined, sets: IntArray, m: int) -> None:
+        self.z[at] = z
+        self.covariance[at] = seen.curvature.covariance
+        self.reconciled[at] = seen.value[:, :m]
+        self.reconciled_u[at] = np.sqrt(seen.curvature.variance[:, :m])
+        self.adjustment[at] = seen.standardised[:, :m]
+        self.redundancy[at] = np.where(seen.testable, seen.loose.redundancy, 0.0)[:, :m]
+        self.chi_square[at] = seen.chi_square
+        self.limit[at] = seen.limit
+        self.inflation[at] = seen.curvature.inflation
+        self.freedom[at] = seen.freedom
+        self.sets[at] = sets
+
+    def blank(self, rows: list[int]) -> None:
+        """Leave no number where a sample failed after all."""
+        for name, array in vars(self).items():
+            if rows:
+                array[rows] = 0 if name in ("freedom", "sets") else np.nan
+
+
+def _told_apart(account: Account) -> Fault:
+    return Fault(
+        "under-determined",
+        ("outlet",) if account.problem.outlet else ("feed",),
+        "the readings of this sample do not tell the unknowns apart within double precision:"
+        " a reading that should decide between them is next to nothing here; add one that"
+        " carries information, such as a flow or the fraction of a main substance",
+    )
+
+
+def _single(block: Estimate) -> Estimate:
+    """Drop the sample axis of a block of one, or raise what stands against it."""
+    if block.failed:
+        raise Refused(block.failed[0])
+    changed: dict[str, Any] = {
+        f.name: getattr(block, f.name)[0]
+        for f in fields(block)
+        if isinstance(getattr(block, f.name), np.ndarray)
+    }
+    table: dict[str, Any] = {
+        f.name: getattr(block.readings, f.name)[0]
+        for f in fields(block.readings)
+        if isinstance(getattr(block.readings, f.name), np.ndarray)
+    }
+    return replace(block, readings=replace(block.readings, **table), **changed)
+
+
+def joined(blocks: list[Estimate]) -> Estimate:
+    """Put the blocks of a series together again."""
+    if len(blocks) == 1:
+        return blocks[0]
+    first = blocks[0]
+    failed: dict[int, Fault] = {}
+    offset = 0
+    for block in blocks:
+        failed.update((offset + row, fault) for row, fault in block.failed.items())
+        offset += len(block.z)
+    arrays: dict[str, Any] = {
+        f.name: np.concatenate([getattr(block, f.name) for block in blocks])
+        for f in fields(first)
+        if isinstance(getattr(first, f.name), np.ndarray)
+    }
+    table: dict[str, Any] = {
+        f.name: np.concatenate([getattr(block.readings, f.name) for block in blocks])
+        for f in fields(first.readings)
+        if isinstance(getattr(first.readings, f.name), np.ndarray)
+    }
+    whole = replace(first, readings=replace(first.readings, **table), failed=failed, **arrays)
+    return replace(whole, notes=tuple(remarks(whole)))

@@ -1,0 +1,108 @@
+"""What a reader of an estimate must know beside its numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+
+import numpy as np
+
+from core.arrays import BoolArray
+from core.errors import Fact, Note
+from core.outlet_analysis.estimate import Estimate
+
+ILL_CONDITIONED = 1e8
+"""Inflation of a variance from which on the answer is called ill-conditioned."""
+
+Counted = Callable[[BoolArray], tuple[str, dict[str, Fact]]]
+
+
+def remarks(found: Estimate) -> Iterator[Note]:
+    """Yield what a reader of the estimate must know."""
+    account = found.account
+    problem, samples = account.problem, account.readings.samples
+    names = problem.reactions.names
+
+    def counted(marks: BoolArray) -> tuple[str, dict[str, Fact]]:
+        if samples is None:
+            return "", {}
+        return " ({count} of {samples} samples)", {
+            "count": int(marks.sum()),
+            "samples": len(marks),
+        }
+
+    if found.per_mole_of_key.any():
+        words, facts = counted(found.per_mole_of_key)
+        yield Note(
+            "per-mole-of-key",
+            "no reading tells how much flows; every flow is given per mole of {key} fed" + words,
+            subject=("feed",),
+            facts={"key": names[problem.key], **facts},
+        )
+    unchecked = (found.degrees_of_freedom == 0) & np.isfinite(found.chi_square)
+    if unchecked.any():
+        words, facts = counted(unchecked)
+        yield Note(
+            "no-redundancy",
+            "the readings just suffice: none of them is checked by the others" + words,
+            subject=("outlet",) if problem.outlet else ("feed",),
+            facts=facts,
+        )
+    poor = found.inflation > ILL_CONDITIONED
+    if poor.any():
+        words, facts = counted(poor)
+        yield Note(
+            "ill-conditioned",
+            "the readings barely tell the unknowns apart; small errors move the answer far, as"
+            " its uncertainty says" + words,
+            severity="warning",
+            subject=("outlet",) if problem.outlet else ("feed",),
+            facts=facts,
+        )
+    sides = [("feed", account.feed_map)]
+    if problem.outlet:
+        sides.append(("outlet", account.outlet_map))
+    for side, forms in sides:
+        flows, u = found.z @ forms.T, found.u_of(forms)
+        scale = np.abs(flows).max(axis=-1, keepdims=True)
+        below = flows < -np.maximum(2 * u, 1e-9 * scale)
+        for i in np.flatnonzero(below.any(axis=0)).tolist():
+            words, facts = counted(below[:, i])
+            yield Note(
+                "negative-flow",
+                "the readings put the flow of {substance} below zero by more than twice its"
+                " uncertainty, which cannot be: look for a wrong reading, basis, removal or a"
+                " missing reaction" + words,
+                severity="warning",
+                subject=(side, names[i]),
+                facts={"substance": names[i], **facts},
+            )
+    yield from _removal_notes(found, counted)
+
+
+def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """Removals whose residual is more than the stream holds of the substance."""
+    account = found.account
+    names = account.problem.reactions.names
+    count = len(names)
+    for g, stream in enumerate(account.streams):
+        analysis = stream.analysis
+        if analysis is None:
+            continue
+        left = 1 - sum(removal.residual for removal in analysis.removed)
+        gone = [removal.substance for removal in analysis.removed]
+        flows = found.z @ account.stream_map[g * count : (g + 1) * count].T
+        own = account.writer.own[g]
+        rest = flows @ own - flows[..., gone] @ own[gone]
+        for removal in analysis.removed:
+            kept = removal.residual / left * rest
+            over = kept > flows[..., removal.substance] * (1 + 1e-9)
+            if removal.residual > 0 and over.any():
+                words, facts = counted(over)
+                yield Note(
+                    "residual-above-content",
+                    "the residual of {substance} in the analysed sample is more than the stream"
+                    " holds of it; it cannot have been removed down to there" + words,
+                    severity="warning",
+                    subject=analysis.subject,
+                    facts={"substance": names[removal.substance], **facts},
+                )

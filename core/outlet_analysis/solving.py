@@ -1,0 +1,178 @@
+"""Fitting a block of samples, with what its readings leave open dealt with first."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Fault
+from core.outlet_analysis.account import Account
+from core.outlet_analysis.forms import Forms
+from core.outlet_analysis.gauss_newton import Fit, IntArray, least_squares
+from core.outlet_analysis.observability import (
+    equilibrated,
+    open_directions,
+    open_patterns,
+    touched,
+    under_determined,
+)
+from core.outlet_analysis.preparation import AGREEMENT, Block, Group, conflict, groups
+
+
+@dataclass(frozen=True, eq=False)
+class Fitted:
+    """Samples fitted together.
+
+    Attributes
+    ----------
+    rows : ndarray of int
+        Their places in the block.
+    fit : Fit
+    z, natural : ndarray, shape (len(rows), n)
+    directions : ndarray, shape (n, d)
+        What the readings leave open; it was held where it started.
+    """
+
+    rows: IntArray
+    fit: Fit
+    z: FloatArray
+    natural: FloatArray
+    directions: FloatArray
+
+
+Outcome = Fitted | tuple[IntArray, Fault]
+
+
+def fit_block(block: Block, reported: FloatArray | None) -> Iterator[Outcome]:
+    """Fit every sample of a block.
+
+    Parameters
+    ----------
+    block : Block
+    reported : ndarray, shape (k, n), or None
+        Linear forms of the unknowns that the answer will give: a sample whose
+        readings leave one of them open comes back as a fault. None: hold open
+        what is open and say so.
+
+    Yields
+    ------
+    Fitted, or (rows, Fault)
+        Together they hold each sample once.
+    """
+    for group in groups(block):
+        if isinstance(group, Group):
+            yield from _fit_group(block, group, reported)
+        else:
+            yield group
+
+
+def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Iterator[Outcome]:
+    active = block.active[group.rows]
+    label = np.zeros(len(active), dtype=np.intp)
+    first = np.zeros(1, dtype=np.intp)
+    if not (active == active[0]).all():
+        _, first, label = np.unique(
+            np.packbits(active, axis=1), axis=0, return_index=True, return_inverse=True
+        )
+        label = label.reshape(-1)
+    forms = group.fit.forms.samples(_marks(first, len(active)))
+    slopes = forms.jacobian(forms.at(group.start[_marks(first, len(active))]))
+    order = np.argsort(np.argsort(first))
+    scaled = equilibrated(slopes[order], active[first], group.natural[first])
+    is_open = open_patterns(scaled)
+    determined = ~is_open[label]
+    nothing = np.empty((len(block.account.unknowns), 0))
+    if determined.all():
+        yield from _solved(block, group, determined, group.fit, nothing)
+        return
+    if determined.any():
+        yield from _solved(block, group, determined, group.fit.samples(determined), nothing)
+    for pattern in np.flatnonzero(is_open).tolist():
+        mine = label == pattern
+        sample = int(first[pattern])
+        natural = group.natural[sample]
+        directions = open_directions(scaled[pattern])
+        if reported is not None and touched(reported, natural, directions).any():
+            subjects = block.account.readings.subjects
+            missing = tuple(
+                s for s, there in zip(subjects, active[sample], strict=False) if not there
+            )
+            fault = under_determined(
+                block.account, group.start[sample], natural, directions, missing
+            )
+            yield group.rows[mine], fault
+            continue
+        held = directions.T / natural
+        fit = _holding(group.fit.samples(mine), held, group.start[mine])
+        yield from _solved(block, group, mine, fit, directions * natural[:, None])
+
+
+def _marks(places: IntArray, count: int) -> BoolArray:
+    marks = np.zeros(count, dtype=bool)
+    marks[places] = True
+    return marks
+
+
+def _holding(fit: Fit, held: FloatArray, z: FloatArray) -> Fit:
+    """Add equations that keep the forms ``held`` (d, n) at their values in ``z``."""
+    d, forms = len(held), fit.forms
+    constants = forms.constants
+    m, n = len(forms.numerators), len(z)
+    return Fit(
+        Forms(
+            np.concatenate([constants, np.ones((*constants.shape[:-1], d))], axis=-1),
+            np.concatenate([forms.numerators, held]),
+            forms.bases,
+            np.concatenate([forms.exponents, np.zeros((d, forms.exponents.shape[1]))]),
+        ),
+        np.concatenate([fit.measured, z @ held.T], axis=1),
+        np.concatenate([fit.weight, np.zeros((n, d))], axis=1),
+        np.concatenate([fit.stiff, np.arange(m, m + d)]),
+        np.concatenate([fit.compliance, np.zeros((n, d))], axis=1),
+    )
+
+
+def _solved(
+    block: Block, group: Group, mine: BoolArray, fit: Fit, directions: FloatArray
+) -> Iterator[Outcome]:
+    start, natural, rows = group.start, group.natural, group.rows
+    if not mine.all():
+        start, natural, rows = start[mine], natural[mine], rows[mine]
+    solution = least_squares(fit, start, natural)
+    good = solution.converged
+    if not good.all():
+        yield rows[~good], not_converged(block.account)
+    agreed = good
+    if len(group.dependent):
+        found = fit.forms.at(solution.z)
+        slopes = fit.forms.jacobian(found)[:, group.dependent] * natural[:, None, :]
+        measured = fit.measured[:, group.dependent]
+        size = np.maximum(np.abs(measured), np.abs(slopes).max(axis=-1))
+        gap = np.abs(measured - found.value[:, group.dependent])
+        agreed = good & (gap <= AGREEMENT * size).all(axis=1)
+        if (good & ~agreed).any():
+            exact = sorted({*fit.stiff.tolist(), *group.dependent.tolist()})
+            count = len(block.account.readings.subjects)
+            yield (
+                rows[good & ~agreed],
+                conflict(block.account, [row for row in exact if row < count]),
+            )
+    if agreed.all():
+        yield Fitted(rows, fit, solution.z, natural, directions)
+    elif agreed.any():
+        yield Fitted(
+            rows[agreed], fit.samples(agreed), solution.z[agreed], natural[agreed], directions
+        )
+
+
+def not_converged(account: Account) -> Fault:
+    """Return the fault of a sample for which no account was found."""
+    return Fault(
+        "not-converged",
+        ("outlet",) if account.problem.outlet else ("feed",),
+        "no account was found that comes near the readings with every total positive;"
+        " look for a reading that is far off, a wrong unit or basis, or a flow of zero",
+    )

@@ -1,0 +1,246 @@
+"""How big must it be? The question, the answer, and what a reactor kind owes.
+
+One isothermal reaction, a target conversion of the key, and a reactor kind that
+knows its own mole balance. All numbers may be arrays over N cases along leading
+axes, written (...) below; one case is the same with N = 1.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import ClassVar, Literal, Protocol
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Note, refuse
+from core.numerics.quadrature import IndexArray
+from core.rates.power_law import PowerLaw
+from core.reactions.reaction_set import ReactionSet
+from core.reactors.path import ReactionPath, reaction_path
+from core.streams.stream import Stream
+
+
+class ReactorKind(Protocol):
+    """What a kind of reactor must answer."""
+
+    kind: ClassVar[str]
+    """The name of the kind in a request."""
+    size_dimension: ClassVar[Literal["volume", "time"]]
+    is_batch: ClassVar[bool]
+
+    def size(self, problem: SizingProblem, points: int = 0) -> Sizing:
+        """Return the size for the problem's target, with a profile of ``points`` points."""
+        ...  # pragma: no cover
+
+
+@dataclass(frozen=True, eq=False)
+class SizingProblem:
+    """A target conversion for one isothermal reaction in a reactor of a kind.
+
+    Attributes
+    ----------
+    reactions : ReactionSet
+        Of one reaction.
+    key : int
+        Index of the key reactant A.
+    feed : Stream
+        Flows of shape (..., S), or the amounts of a batch.
+    rate : PowerLaw
+        Per volume of fluid.
+    target_conversion : float or ndarray, shape (...)
+        Of the key; below zero where the reaction is to run backwards. For zero
+        the size is zero.
+    reactor : ReactorKind
+    """
+
+    reactions: ReactionSet
+    key: int
+    feed: Stream
+    rate: PowerLaw
+    target_conversion: FloatArray | float
+    reactor: ReactorKind
+
+
+@dataclass(frozen=True, eq=False)
+class Limit:
+    """How far conversion can go from this feed, and what bounds it.
+
+    Attributes
+    ----------
+    conversion : ndarray, shape (...)
+        Of the key; below zero where the reaction runs backwards.
+    at_equilibrium : ndarray of bool, shape (...)
+        Whether equilibrium bounds it; else a substance is used up there.
+    substance : ndarray of int, shape (...)
+        Which one is or would be used up.
+    """
+
+    conversion: FloatArray
+    at_equilibrium: BoolArray
+    substance: IndexArray
+
+
+@dataclass(frozen=True, eq=False)
+class Profile:
+    """The way through the reactor, or through the time of a batch.
+
+    Attributes
+    ----------
+    conversion : ndarray, shape (..., n)
+        In equal steps from 0 to the target.
+    size : ndarray, shape (..., n)
+        Volume up to there, m3; of a batch the time, s.
+    rate : ndarray, shape (..., n)
+        Of consumption of the key, mol/(m3 s).
+    """
+
+    conversion: FloatArray
+    size: FloatArray
+    rate: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class Tanks:
+    """The tanks of a series, in order of flow.
+
+    Attributes
+    ----------
+    conversion : ndarray, shape (..., number)
+        At the outlet of each, and so in it.
+    rate : ndarray, shape (..., number)
+        Of consumption of the key in it, mol/(m3 s).
+    volume : ndarray, shape (...)
+        Of each single tank, m3.
+    """
+
+    conversion: FloatArray
+    rate: FloatArray
+    volume: FloatArray
+
+
+@dataclass(frozen=True, eq=False)
+class Sizing:
+    """The answer.
+
+    Attributes
+    ----------
+    size : ndarray, shape (...)
+        Volume of the reactor, of all tanks together, m3; of a batch the
+        reaction time, s.
+    conversion : ndarray, shape (...)
+        The target.
+    distance_to_limit : ndarray, shape (...)
+        1 - X/X_limit, known to its own last digits.
+    limit : Limit
+    space_time : ndarray, shape (...), or None
+        V/v at the inlet, s. None for a batch.
+    mean_residence_time : ndarray, shape (...), or None
+        Integral of dV/v, s; of tanks the sum of V/v at the outlet of each.
+        None for a batch.
+    outlet : Stream
+        Flows of shape (..., S); for a batch the amounts at the end.
+    outlet_rate : ndarray, shape (...)
+        Of consumption of the key at the outlet, mol/(m3 s).
+    profile : Profile or None
+    tanks : Tanks or None
+    evaluations : int
+        How often the rate was evaluated, counted by single values.
+    notes : tuple of Note
+    """
+
+    size: FloatArray
+    conversion: FloatArray
+    distance_to_limit: FloatArray
+    limit: Limit
+    space_time: FloatArray | None
+    mean_residence_time: FloatArray | None
+    outlet: Stream
+    outlet_rate: FloatArray
+    evaluations: int
+    profile: Profile | None = None
+    tanks: Tanks | None = None
+    notes: tuple[Note, ...] = field(default=())
+
+
+def size_reactor(problem: SizingProblem, points: int = 0) -> Sizing:
+    """Return the size of the reactor that reaches the target conversion.
+
+    Parameters
+    ----------
+    problem : SizingProblem
+    points : int
+        Of the profile, ends included; 0 for none.
+
+    Raises
+    ------
+    Refused
+        ``one-reaction-only``, ``key-absent``, ``key-not-consumed``,
+        ``flow-negative``, ``condition-missing``, ``phase-vanishes``,
+        ``feed-does-not-fit-reactor``, ``target-out-of-reach``,
+        ``reaction-does-not-start``, ``negative-order-needs-floor``,
+        ``out-of-range``, and what :mod:`core.rates` and :mod:`core.numerics`
+        refuse.
+    """
+    return problem.reactor.size(problem, points)
+
+
+def path_of(problem: SizingProblem, *, constant_volume: bool) -> ReactionPath:
+    """Return the way from the feed to the limit for a reactor kind, its feed checked."""
+    reactor, feed = problem.reactor, problem.feed
+    if feed.batch != reactor.is_batch:
+        raise refuse(
+            "feed-does-not-fit-reactor",
+            ("feed",),
+            "a batch is charged with amounts and the feed states flows; state amounts, or a "
+            "continuous reactor"
+            if reactor.is_batch
+            else "a continuous reactor is fed with flows and the feed states the amounts of a "
+            "batch; state flows, or the reactor kind batch",
+        )
+    return reaction_path(
+        problem.reactions,
+        problem.key,
+        feed,
+        problem.rate,
+        problem.target_conversion,
+        constant_volume=constant_volume,
+    )
+
+
+def outlet_stream(problem: SizingProblem, path: ReactionPath, *, constant_volume: bool) -> Stream:
+    """Return what leaves at the target, or stands in the vessel at the end of a batch."""
+    feed, lead = problem.feed, path.lead
+    account = path.account
+    there = account.up_to(path.target_gone, path.target_left)
+    substances = there.shape[1] - 2
+    flows = (path.key_flow[:, None] * there[:, :substances]).reshape(*lead, substances)
+    pressure = feed.pressure
+    if feed.phase == "gas" and constant_volume and pressure is not None:
+        rise = (there[:, -2] / account.start[:, -2]).reshape(lead)
+        # Of one case a number like that of the feed, of several an array.
+        pressure = pressure * (rise if lead else float(rise))  # type: ignore[assignment]
+    return Stream(
+        flows=flows,
+        in_phase=feed.in_phase,
+        phase=feed.phase,
+        batch=feed.batch,
+        temperature=feed.temperature,
+        pressure=pressure,
+        compressibility=feed.compressibility,
+        liquid_volumetric_flow=feed.liquid_volumetric_flow,
+    )
+
+
+def limit_of(path: ReactionPath) -> Limit:
+    """Return the limit of the path in the shape of the answer."""
+    return Limit(
+        path.limit.reshape(path.lead),
+        path.at_equilibrium.reshape(path.lead),
+        path.exhausted.reshape(path.lead),
+    )
+
+
+def signed(path: ReactionPath, rate: FloatArray) -> FloatArray:
+    """Return a rate in the direction of travel, shape (N, q), as one of consumption of the key."""
+    return rate * np.where(path.limit < 0, -1.0, 1.0)[:, None]

@@ -1,0 +1,193 @@
+"""From metered streams whose every flow is read directly to the one stream they make."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
+from core.errors import Amount, Note, Subject, refuse
+from core.reactions.reaction_set import ReactionSet
+from core.streams.metered import Measurement, MeteredStream
+from core.streams.stream import Stream, StreamPhase
+
+CONTRADICTION = 0.01
+"""Relative difference between a stated volume and that of the gas law which is refused."""
+
+
+@dataclass(frozen=True)
+class Conditions:
+    """What is stated of the sum of the streams: K, Pa, -, m3/s (batch: m3), kg/m3."""
+
+    phase: StreamPhase
+    subject: Subject
+    temperature: Measurement | None = None
+    pressure: Measurement | None = None
+    compressibility: float = 1.0
+    volumetric_flow: Measurement | None = None
+    density: Measurement | None = None
+
+
+def is_direct(stream: MeteredStream) -> bool:
+    """Whether the stream's flows are read substance by substance, with nothing to solve for."""
+    if stream.analysis is None:
+        return all(f.substance is not None or f.kind == "volume" for f in stream.flows)
+    return stream.analysis.basis in ("concentration", "mass-concentration") and any(
+        f.substance is None and f.kind == "volume" and f.molar_volume is None for f in stream.flows
+    )
+
+
+def direct_flows(stream: MeteredStream, molar_masses: FloatArray) -> FloatArray:
+    """Return the flows of a stream that :func:`is_direct`, shape (S,), mol/s (batch: mol)."""
+    flows = np.zeros(molar_masses.size)
+    for reading in stream.flows:
+        if reading.substance is None:
+            continue
+        value = reading.measurement.value
+        per_mole = molar_masses[reading.substance] if reading.kind == "mass" else 1.0
+        flows[reading.substance] += value / per_mole
+    if stream.analysis is not None:
+        volume = stated_volume(stream)
+        assert volume is not None
+        by_mass = stream.analysis.basis == "mass-concentration"
+        for component in stream.analysis.components:
+            (i,) = component.weights
+            per_mole = molar_masses[i] if by_mass else 1.0
+            flows[i] += component.measurement.value * volume / per_mole
+    return flows
+
+
+def stated_volume(stream: MeteredStream) -> float | None:
+    """Return the volumetric flow stated of a stream at its own conditions, m3/s (batch: m3)."""
+    for reading in stream.flows:
+        if reading.substance is None and reading.kind == "volume" and reading.molar_volume is None:
+            return reading.measurement.value
+    return None
+
+
+def in_phase(reactions: ReactionSet, phase: StreamPhase) -> BoolArray:
+    """Return which substances are in a stream of this phase, shape (S,)."""
+    return np.array([s.phase is None or s.phase == phase for s in reactions.substances])
+
+
+def join_streams(
+    reactions: ReactionSet,
+    flows: FloatArray,
+    streams: Sequence[MeteredStream],
+    conditions: Conditions,
+    *,
+    batch: bool,
+) -> tuple[Stream, tuple[Note, ...]]:
+    """Return the stream of known flows that the metered ones make together.
+
+    Parameters
+    ----------
+    reactions : ReactionSet
+    flows : ndarray, shape (S,)
+        Sum over the streams, mol/s (batch: mol).
+    streams : sequence of MeteredStream
+    conditions : Conditions
+        Of the sum.
+    batch : bool
+
+    Returns
+    -------
+    stream : Stream
+    assumed : tuple of Note
+        What had to be assumed to know its volume.
+
+    Raises
+    ------
+    Refused
+        ``no-flow`` when nothing flows; ``volume-contradicts-conditions``.
+    """
+    present = in_phase(reactions, conditions.phase)
+    if not flows[present].sum() > 0:
+        raise refuse(
+            "no-flow",
+            conditions.subject,
+            f"no substance of the {conditions.phase} has a flow above zero; state what flows",
+        )
+    temperature = _value(conditions.temperature)
+    pressure = _value(conditions.pressure)
+    volume, assumed = _volume(reactions, flows * present, streams, conditions)
+    if conditions.phase == "gas" and volume is not None:
+        total = float(flows[present].sum())
+        if temperature is not None:
+            follows = conditions.compressibility * total * GAS_CONSTANT * temperature / volume
+            _agree(conditions, follows, pressure)
+            if pressure is None:
+                pressure = follows
+                assumed = (*assumed, _pressure_follows(follows))
+    stream = Stream(
+        flows=flows,
+        in_phase=present,
+        phase=conditions.phase,
+        batch=batch,
+        temperature=temperature,
+        pressure=pressure,
+        compressibility=conditions.compressibility,
+        liquid_volumetric_flow=volume if conditions.phase == "liquid" else None,
+    )
+    return stream, assumed
+
+
+def _value(measurement: Measurement | None) -> float | None:
+    return None if measurement is None else measurement.value
+
+
+def _volume(
+    reactions: ReactionSet,
+    flows: FloatArray,
+    streams: Sequence[MeteredStream],
+    conditions: Conditions,
+) -> tuple[float | None, tuple[Note, ...]]:
+    """Return the volumetric flow of the sum where it can be known, m3/s (batch: m3)."""
+    if conditions.volumetric_flow is not None:
+        return conditions.volumetric_flow.value, ()
+    if conditions.density is not None:
+        return float(flows @ reactions.molar_masses) / conditions.density.value, ()
+    volumes = []
+    for stream in streams:
+        volume = stated_volume(stream)
+        if volume is None and stream.density is not None:
+            mass = float(direct_flows(stream, reactions.molar_masses) @ reactions.molar_masses)
+            volume = mass / stream.density.value
+        if volume is None:
+            return None, ()
+        volumes.append(volume)
+    if len(volumes) > 1 and conditions.phase == "liquid":
+        note = Note(
+            "volumes-add-up",
+            "the volume of the mixed liquid is the sum of its streams' volumes",
+            subject=conditions.subject,
+        )
+        return sum(volumes), (note,)
+    if len(volumes) > 1:
+        # Gases metered at conditions of their own do not add up to one volume.
+        return None, ()
+    return volumes[0], ()
+
+
+def _agree(conditions: Conditions, follows: float, stated: float | None) -> None:
+    if stated is None or abs(follows - stated) <= CONTRADICTION * stated:
+        return
+    raise refuse(
+        "volume-contradicts-conditions",
+        (*conditions.subject, "pressure"),
+        "the flows and the volume stated make {follows} at this temperature, and {stated} is"
+        " stated: leave the volume or the pressure out, or mend the one that is wrong",
+        follows=Amount(follows, "pressure"),
+        stated=Amount(stated, "pressure"),
+    )
+
+
+def _pressure_follows(pressure: float) -> Note:
+    return Note(
+        "pressure-from-volume",
+        "the pressure follows from the flows, the volume and the temperature: {pressure}",
+        facts={"pressure": Amount(pressure, "pressure")},
+    )

@@ -1,0 +1,63 @@
+"""What a calculation answers with, whatever it calculates."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from schemas.edge import Json
+
+
+@dataclass(frozen=True)
+class Table:
+    """Columns of equal length, and the unit of each that has one."""
+
+    columns: Mapping[str, list[Any]]
+    units: Mapping[str, str]
+
+    def document(self) -> Json:
+        """Return the table as it stands in JSON."""
+        return {"columns": dict(self.columns), "units": dict(self.units)}
+
+
+@dataclass(frozen=True)
+class Answer:
+    """A result in the request's units, with what its reader must know.
+
+    Attributes
+    ----------
+    result : dict
+    notes, assumed : list of dict
+    method : str
+        How it was computed, in a line.
+    data : str
+        Where packaged data in it come from.
+    table : callable or None
+        Makes the same result as a table, where the route offers one.
+    """
+
+    result: Json
+    notes: list[Json]
+    assumed: list[Json]
+    method: str
+    data: str
+    table: Callable[[], Table] | None = None
+
+    def document(self, release: str, digest: str, digest_of: str) -> Json:
+        """Return the answer's document."""
+        return {
+            "result": self.result,
+            "notes": self.notes,
+            "assumed": self.assumed,
+            "provenance": {
+                "release": release,
+                "method": self.method,
+                "data": self.data,
+                "digest": digest,
+                "digest_of": digest_of,
+            },
+        }
+
+
+ATOMIC_WEIGHTS = "IUPAC standard atomic weights 2021 (Pure Appl. Chem. 94, 573, 2022)"

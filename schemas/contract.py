@@ -1,0 +1,234 @@
+"""The published contract: an OpenAPI 3.1 document made from the schemas.
+
+The document is packaged (``schemas/published/openapi.json``), so that serving
+it needs no library and a reviewer sees in a diff what a change does to callers.
+"""
+
+from __future__ import annotations
+
+import json
+import warnings
+from dataclasses import dataclass
+from functools import cache
+from importlib.resources import files
+from typing import Any
+
+from marshmallow import Schema, fields
+
+from schemas.conversion import ConversionAnswer, ConversionRequest
+from schemas.edge import Json
+from schemas.examples import EXAMPLES
+from schemas.fields import LimitSchema, StrictField, UncertainSchema, quantity_components
+from schemas.problem import ProblemSchema
+from schemas.stoichiometric_table import StoichiometricTableAnswer, StoichiometricTableRequest
+from schemas.volume import VolumeAnswer, VolumeRequest
+
+JSON = "application/json"
+CSV = "text/csv"
+HTML = "text/html"
+PROBLEM_JSON = "application/problem+json"
+
+CONTRACT_VERSION = "1.0.0"
+"""Of the v1 contract: the minor number counts compatible extensions."""
+
+DESCRIPTION = """\
+The mole account of a plant's reactors: stateless, JSON in and JSON out.
+
+**Quantities.** A number with a unit, `"12.5 kmol/h"`, or an object
+`{"value": 12.5, "unit": "kmol/h", "u": 0.1}` with its standard uncertainty; a bare number where
+the quantity is dimensionless. Normal, standard and standard-cubic-foot gas volumes are amounts of
+substance (ideal molar volume at 273.15 K and 101.325 kPa, 288.15 K and 101.325 kPa, 60 degF and
+14.696 psia). Gauge pressures are read with `atmospheric_pressure`.
+
+**Numbers in answers.** Each has its unit: the one asked for in `report_in`, else that of the field
+answered, else the first used of that dimension in the request, else a default. What cannot be
+computed is null with a note; what does not apply is absent.
+
+**Streams.** A stream states its phase and exactly one of: `flows` (by substance, molar or mass);
+`amounts` (a batch); `flow` with `analysis`; `concentrations` with `volumetric_flow` (a batch:
+`volume`). `streams` holds several metered ones. A volumetric gas `flow` states its `meter`'s
+temperature and pressure. A liquid needs `volumetric_flow`, `density` or `concentrations` before it
+has concentrations.
+
+**Refusals.** Every one is a problem document (RFC 9457) whose `errors` name the place at fault, by
+JSON Pointer, what was found, what is allowed and how to mend it. 400: the document breaks this
+contract. 422: it obeys the contract and cannot be computed.
+
+**Cautions.** Results are advisory: screening calculations, no relief, runaway or flammability
+assessment, and not to be wired to safety functions. Follow local codes and licensed practice.
+"""
+
+
+@dataclass(frozen=True)
+class Operation:
+    """One route, as the contract knows it."""
+
+    name: str
+    method: str
+    path: str
+    summary: str
+    media_types: tuple[str, ...] = (JSON,)
+    request: type[Schema] | None = None
+    answer: type[Schema] | None = None
+    parameters: tuple[str, ...] = ()
+
+
+OPERATIONS = (
+    Operation("index", "GET", "/", "the routes, and a request to paste"),
+    Operation(
+        "stoichiometric-table",
+        "POST",
+        "/v1/stoichiometric-table",
+        "the stoichiometric table at given conversions or extents",
+        (JSON, CSV),
+        StoichiometricTableRequest,
+        StoichiometricTableAnswer,
+    ),
+    Operation(
+        "conversion",
+        "POST",
+        "/v1/conversion",
+        "conversion, yields, closures and reconciliation from an outlet analysis",
+        (JSON,),
+        ConversionRequest,
+        ConversionAnswer,
+    ),
+    Operation(
+        "volume",
+        "POST",
+        "/v1/volume",
+        "the reactor size that a target conversion needs",
+        (JSON,),
+        VolumeRequest,
+        VolumeAnswer,
+    ),
+    Operation("contract", "GET", "/v1/openapi.json", "this contract"),
+    Operation(
+        "problem", "GET", "/problems/{code}", "what a problem code means", (JSON, HTML),
+        parameters=("code",),
+    ),
+    Operation("health", "GET", "/healthz", "whether the process is alive"),
+    Operation("ready", "GET", "/readyz", "whether the process can compute"),
+)
+
+
+def operation(name: str) -> Operation:
+    """Return the operation called ``name``."""
+    return next(op for op in OPERATIONS if op.name == name)
+
+
+def openapi_document() -> Json:
+    """Return the OpenAPI document made from the schemas as they are now."""
+    # Only here: serving the packaged document needs none of it.
+    from apispec import APISpec
+    from apispec.ext.marshmallow import MarshmallowPlugin
+
+    plugin = MarshmallowPlugin(schema_name_resolver=_component_name)
+    spec = APISpec(
+        title="Molwright",
+        version=CONTRACT_VERSION,
+        openapi_version="3.1.0",
+        info={"description": DESCRIPTION, "license": {"name": "Apache-2.0"}},
+        plugins=[plugin],
+    )
+    converter = plugin.converter
+    assert converter is not None
+
+    def publish(self: Any, field: fields.Field[Any], **_: Any) -> Json:
+        if not isinstance(field, StrictField):
+            return {}
+        return field.published(self.field2property)
+
+    converter.add_attribute_function(publish)
+    for name, component in quantity_components().items():
+        spec.components.schema(name, component)
+    spec.components.schema("Uncertain", schema=UncertainSchema)
+    spec.components.schema("Limit", schema=LimitSchema)
+    spec.components.schema("Problem", schema=ProblemSchema)
+    with warnings.catch_warnings():
+        # One component under two modifiers would be a fault of ours, and a test compares them.
+        warnings.simplefilter("error")
+        for op in OPERATIONS:
+            spec.path(path=op.path, operations={op.method.lower(): _described(op)})
+    document: Json = spec.to_dict()
+    limit = document["components"]["schemas"]["Limit"]
+    limit["minProperties"] = limit["maxProperties"] = 1
+    return document
+
+
+def _component_name(schema: Any) -> str:
+    name = schema.__name__ if isinstance(schema, type) else type(schema).__name__
+    return name.removesuffix("Schema")
+
+
+def _described(op: Operation) -> Json:
+    described: Json = {"operationId": op.name, "summary": op.summary, "responses": _responses(op)}
+    parameters: list[Json] = [
+        {"name": name, "in": "path", "required": True, "schema": {"type": "string"}}
+        for name in op.parameters
+    ]
+    if JSON in op.media_types and op.name not in ("contract", "health", "ready"):
+        parameters.append(
+            {
+                "name": "pretty",
+                "in": "query",
+                "description": "1 indents the answer.",
+                "schema": {"type": "string", "enum": ["0", "1"]},
+            }
+        )
+    if parameters:
+        described["parameters"] = parameters
+    if op.request is not None:
+        examples = {
+            example.name: {"summary": example.title, "value": example.request}
+            for example in EXAMPLES
+            if example.operation == op.name
+        }
+        described["requestBody"] = {
+            "required": True,
+            "content": {JSON: {"schema": op.request, "examples": examples}},
+        }
+    return described
+
+
+def _responses(op: Operation) -> Json:
+    content: Json = {}
+    for media in op.media_types:
+        schema: Any = {"type": "string"} if media != JSON else op.answer or {"type": "object"}
+        content[media] = {"schema": schema}
+        if media == JSON and op.answer is not None:
+            content[media]["examples"] = {
+                example.name: {"summary": example.title, "value": example.answer()}
+                for example in EXAMPLES
+                if example.operation == op.name
+            }
+    problem = {PROBLEM_JSON: {"schema": ProblemSchema}}
+    refusals = {"406": "no form that the client accepts"}
+    if op.request is not None:
+        refusals |= {
+            "400": "the document breaks this contract",
+            "413": "the body is too large",
+            "415": "the body is not declared as JSON",
+            "422": "the document obeys this contract and cannot be computed",
+        }
+    elif op.name not in ("health", "ready"):
+        refusals["400"] = "a query parameter that is not known"
+    if op.parameters:
+        refusals["404"] = "no such problem code"
+    responses: Json = {"200": {"description": op.summary, "content": content}}
+    for status, meaning in sorted(refusals.items()):
+        responses[status] = {"description": meaning, "content": problem}
+    return responses
+
+
+def render(document: Json) -> bytes:
+    """Return the document as it is packaged."""
+    return (json.dumps(document, indent=1, ensure_ascii=False) + "\n").encode()
+
+
+@cache
+def published_text() -> bytes:
+    """Return the packaged OpenAPI document."""
+    return files("schemas").joinpath("published/openapi.json").read_bytes()
+
+

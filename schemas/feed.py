@@ -1,0 +1,218 @@
+"""The feed of a calculation that takes it as known, and streams as they stand in answers."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from marshmallow import fields
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Note, Refused, Subject
+from core.outlet_analysis.feed import known_feed
+from core.reactions.reaction_set import ReactionSet
+from core.streams.known import Conditions
+from core.streams.stream import Stream
+from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.results import NumberSchema, OpenSchema, number, numbers_by_name
+from schemas.shape import child
+from schemas.streams import StreamReader
+
+
+@dataclass(frozen=True)
+class StreamWords:
+    """How a stream's quantities are called and counted: those of a flow, or of a batch."""
+
+    flow: str
+    flow_dimension: str
+    volume: str
+    volume_dimension: str
+
+
+FLOW = StreamWords("flow", "molar_flow", "volumetric_flow", "volumetric_flow")
+BATCH = StreamWords("amount", "amount", "volume", "volume")
+
+
+def words_of(batch: bool) -> StreamWords:
+    """Return the words for a batch or for a flow."""
+    return BATCH if batch else FLOW
+
+
+def is_batch(document: Json) -> bool:
+    """Whether a stream document states a batch: amounts, or concentrations in a volume."""
+    streams = document.get("streams", (document,))
+    return any("amounts" in stream or "volume" in stream for stream in streams)
+
+
+def read_feed(
+    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet
+) -> Stream | None:
+    """Return the feed as one stream of known flows; None after a fault.
+
+    A feed given by an analysis is the account that fits its readings best.
+    """
+    subject: Subject = ("feed",)
+    reader.at(subject, pointer)
+    batch = is_batch(document)
+    kept = len(reader.faults)
+    readings = StreamReader(reader, reactions, batch)
+    streams = readings.metered(document, pointer, subject, required=True)
+    conditions = read_conditions(readings, document, pointer, subject)
+    if len(reader.faults) > kept or conditions is None:
+        return None
+    try:
+        known = known_feed(reactions, streams, conditions, batch=batch)
+    except Refused as refused:
+        reader.collect(refused)
+        return None
+    reader.assumed.extend(known.assumed)
+    reader.notes.extend(known.notes)
+    if known.estimated:
+        reader.assumed.extend(readings.default_notes())
+    elif _has_uncertainty(document):
+        reader.notes.append(
+            Note(
+                "uncertainty-not-used",
+                "this calculation takes the feed as stated; its uncertainties are not carried"
+                " through",
+                subject=subject,
+            )
+        )
+    return known.stream
+
+
+def read_conditions(
+    readings: StreamReader, document: Json, pointer: str, subject: Subject
+) -> Conditions | None:
+    """Return what is stated of the sum of the streams; None where no phase is."""
+    phase = document.get("phase")
+    if phase is None:
+        if "streams" in document:
+            readings.reader.fault(
+                "field-needed",
+                child(pointer, "phase"),
+                "the phase of the streams together is needed; allowed: gas, liquid",
+            )
+        return None
+    several = "streams" in document
+    volume = "volume" if readings.batch else "volumetric_flow"
+    return Conditions(
+        phase=phase,
+        subject=subject,
+        temperature=readings.condition(document, "temperature", pointer, subject),
+        pressure=readings.condition(document, "pressure", pointer, subject),
+        compressibility=document["compressibility"],
+        volumetric_flow=readings.volume(document, pointer, subject, volume) if several else None,
+        density=readings.density(document, pointer, subject, phase) if several else None,
+    )
+
+
+def _has_uncertainty(document: Json) -> bool:
+    streams = document.get("streams", (document,))
+    return any(
+        raw.u is not None or raw.u_rel is not None
+        for stream in streams
+        for form in ("flows", "amounts", "concentrations")
+        for raw in stream.get(form, {}).values()
+    )
+
+
+class SpeciesFlowSchema(OpenSchema):
+    """One substance in a stream."""
+
+    flow = number("Molar flow.")
+    amount = number("Amount, of a batch.")
+    mole_fraction = number("Of the stream's own phase; absent for a substance outside it.")
+    concentration = number("In the stream's own phase; null where the volume is not known.")
+
+
+class StreamResultSchema(OpenSchema):
+    """A stream of an answer."""
+
+    temperature = number("Where known.")
+    pressure = number("Absolute unless reported in a gauge unit; where known.")
+    compressibility = number("Where it is not 1.")
+    volumetric_flow = number("At the stream's conditions; null where it is not known.")
+    volume = number("Of a batch, at its conditions; null where it is not known.")
+    total = fields.Nested(NumberSchema, required=True)
+    phase_total = number("Of the stream's own phase, where substances outside it travel along.")
+    species = numbers_by_name(SpeciesFlowSchema)
+
+
+def write_stream(
+    edge: EdgeMap,
+    names: Sequence[str],
+    flows: FloatArray,
+    in_phase: BoolArray,
+    *,
+    batch: bool,
+    volume: float | None,
+    temperature: float | None,
+    pressure: float | None,
+    compressibility: float = 1.0,
+) -> Json:
+    """Return a stream as it stands in an answer.
+
+    Parameters
+    ----------
+    edge : EdgeMap
+    names : sequence of str, length S
+    flows : ndarray, shape (S,)
+        mol/s (batch: mol).
+    in_phase : ndarray of bool, shape (S,)
+    batch : bool
+    volume : float or None
+        m3/s (batch: m3).
+    temperature, pressure : float or None
+        K, Pa.
+    compressibility : float
+    """
+    words = words_of(batch)
+    scale = edge.scales[words.flow_dimension]
+    unit, factor = scale.unit, scale.factor
+    concentration = edge.scales["concentration"]
+    per_volume = None if volume is None else concentration.factor * volume
+    total = float(flows.sum())
+    inside = in_phase.tolist()
+    phase_total = total if all(inside) else float(flows[in_phase].sum())
+    species: Json = {}
+    for name, flow, within in zip(names, flows.tolist(), inside, strict=True):
+        said: Json = {words.flow: {"value": flow / factor, "unit": unit}}
+        if within:
+            said["mole_fraction"] = {"value": flow / phase_total, "unit": "1"}
+            said["concentration"] = (
+                None
+                if per_volume is None
+                else {"value": flow / per_volume, "unit": concentration.unit}
+            )
+        species[name] = said
+    stream: Json = {}
+    if temperature is not None:
+        stream["temperature"] = edge.number(temperature, "temperature")
+    if pressure is not None:
+        stream["pressure"] = edge.number(pressure, "pressure")
+    if compressibility != 1.0:
+        stream["compressibility"] = edge.number(compressibility, "dimensionless")
+    stream[words.volume] = None if volume is None else edge.number(volume, words.volume_dimension)
+    stream["total"] = {"value": total / factor, "unit": unit}
+    if phase_total != total:
+        stream["phase_total"] = {"value": phase_total / factor, "unit": unit}
+    stream["species"] = species
+    return stream
+
+
+def write_known_stream(edge: EdgeMap, names: Sequence[str], stream: Stream) -> Json:
+    """Return a :class:`Stream` of the core as it stands in an answer."""
+    volume = stream.volumetric_flow
+    return write_stream(
+        edge,
+        names,
+        np.asarray(stream.flows),
+        stream.in_phase,
+        batch=stream.batch,
+        volume=None if volume is None else float(volume),
+        temperature=stream.temperature,
+        pressure=stream.pressure,
+        compressibility=stream.compressibility,
+    )

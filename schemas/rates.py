@@ -1,0 +1,375 @@
+"""Rate laws and equilibrium constants on the wire."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from marshmallow import fields
+
+from core.arrays import FloatArray
+from core.errors import Note, Subject
+from core.rates.constants import Arrhenius, Constant, ConstantAt, TemperatureDependent
+from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff, coefficient_sum
+from core.rates.equilibrium_constant import Kind as EquilibriumKind
+from core.rates.equilibrium_constant import expected_unit_exponents as equilibrium_unit_exponents
+from core.rates.equilibrium_constant import expected_unit_parts as equilibrium_unit_parts
+from core.rates.power_law import (
+    ByAffinity,
+    PowerLaw,
+    ReverseConstant,
+    expected_unit_exponents,
+    expected_unit_parts,
+)
+from core.reactions.reaction_set import ReactionSet
+from core.streams.stream import Stream
+from schemas.edge import Json, RequestReader
+from schemas.fields import Choice, Map, Number, OneOf, Quantity, Text, describe
+from schemas.quantities import RawQuantity
+from schemas.shape import ClosedSchema, child
+from schemas.units import spell
+
+
+class ArrheniusSchema(ClosedSchema):
+    """k = pre_exponential T^temperature_exponent exp(-activation_energy/(R T))."""
+
+    pre_exponential = Quantity(required=True)
+    activation_energy = Quantity(required=True)
+    temperature_exponent = Number(
+        at_least=-10,
+        at_most=10,
+        load_default=0.0,
+        metadata=describe(
+            "Of T/K; the unit of the pre-exponential factor is that of k all the same."
+        ),
+    )
+
+
+class ConstantAtSchema(ClosedSchema):
+    """A constant known at one temperature, and how it changes with it."""
+
+    at = Quantity(required=True, metadata=describe("The temperature at which it holds."))
+    constant = Quantity(required=True)
+    activation_energy = Quantity(required=True)
+
+
+def rate_constant(**kwargs: object) -> OneOf:
+    """Return the field of a rate constant, in any of its forms."""
+    return OneOf(
+        {
+            "pre_exponential": fields.Nested(ArrheniusSchema),
+            "at": fields.Nested(ConstantAtSchema),
+            "otherwise": Quantity(),
+        },
+        **kwargs,
+    )
+
+
+class EquilibriumConstantSchema(ClosedSchema):
+    """An equilibrium constant with what it needs to be used away from where it was stated."""
+
+    constant = Quantity(required=True)
+    at = Quantity(metadata=describe("The temperature at which it holds; with 'enthalpy'."))
+    enthalpy = Quantity(
+        metadata=describe("Standard enthalpy of the reaction as written, per mole of extent.")
+    )
+    standard_pressure = Quantity(
+        metadata=describe("Of a thermodynamic constant (unit 1) of a gas reaction; default 1 bar.")
+    )
+
+
+class AffinitySchema(ClosedSchema):
+    """Net rate = forward (1 - (Q/K)^affinity_exponent) with the reaction's equilibrium constant."""
+
+    affinity_exponent = Number(above=0, at_most=10, load_default=1.0)
+
+
+class ReverseSchema(ClosedSchema):
+    """A reverse rate with its own constant and orders."""
+
+    constant = rate_constant(required=True)
+    orders = Map(Number(at_least=-10, at_most=10), at_least=0, at_most=20, required=True)
+
+
+class RateSchema(ClosedSchema):
+    """A power-law rate."""
+
+    of = Text(
+        metadata=describe(
+            "The substance whose rate the law gives; needed when a coefficient of the equation"
+            " is not 1."
+        )
+    )
+    per = Choice("fluid-volume", required=True)
+    driving = Choice("concentration", "partial-pressure", "mole-fraction", required=True)
+    orders = Map(Number(at_least=-10, at_most=10), at_least=0, at_most=20, required=True)
+    constant = rate_constant(
+        required=True, metadata=describe("Its unit is checked against orders, driving and per.")
+    )
+    reversible = OneOf(
+        {"constant": fields.Nested(ReverseSchema), "otherwise": fields.Nested(AffinitySchema)},
+        metadata=describe("Left out: the rate is irreversible."),
+    )
+    floor = Map(
+        Quantity(),
+        metadata=describe(
+            "By substance of negative order: below this value of the driving quantity the rate no"
+            " longer rises."
+        ),
+    )
+    effectiveness = Number(above=0, at_most=10, load_default=1.0)
+    activity = Number(above=0, at_most=10, load_default=1.0)
+
+
+def equilibrium_constant(**kwargs: object) -> OneOf:
+    """Return the field of an equilibrium constant, in any of its forms."""
+    return OneOf(
+        {"constant": fields.Nested(EquilibriumConstantSchema), "otherwise": Quantity()}, **kwargs
+    )
+
+
+def read_rate(
+    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, feed: Stream
+) -> PowerLaw | None:
+    """Return the rate law of the one reaction of an account; None after a fault.
+
+    Parameters
+    ----------
+    document : dict
+        The reaction's document, with ``rate`` and where needed
+        ``equilibrium_constant``.
+    pointer : str
+        Where it stands.
+    """
+    return _RateReader(document, pointer, reader, reactions, feed).read()
+
+
+@dataclass
+class _RateReader:
+    document: Json
+    pointer: str
+    reader: RequestReader
+    reactions: ReactionSet
+    feed: Stream
+
+    def __post_init__(self) -> None:
+        self.rate: Json = self.document["rate"]
+        self.place = child(self.pointer, "rate")
+        self.subject: Subject = ("reactions", self.reactions.reactions[0].id, "rate")
+        self.reader.at(self.subject, self.place)
+
+    def read(self) -> PowerLaw | None:
+        kept = len(self.reader.faults)
+        orders = self._orders(self.rate, self.place, self.subject)
+        constant = self._constant(self.rate, self.place, self.subject, orders)
+        of = self._of()
+        reverse = self._reverse()
+        floors = self._floors()
+        if len(self.reader.faults) > kept or constant is None or of is None:
+            return None
+        return PowerLaw(
+            of=of,
+            orders=orders,
+            constant=constant,
+            driving=self.rate["driving"],
+            reverse=reverse,
+            floors=floors,
+            activity=self.rate["activity"],
+            effectiveness=self.rate["effectiveness"],
+        )
+
+    def _index(self, name: str, pointer: str) -> int | None:
+        found = self.reactions.find(name)
+        if found is not None:
+            return found
+        self.reader.fault(
+            "unknown-substance",
+            pointer,
+            f"found {name!r}; the substances of this request are {', '.join(self.reactions.names)}",
+        )
+        return None
+
+    def _orders(self, document: Json, pointer: str, subject: Subject) -> FloatArray:
+        orders = np.zeros(len(self.reactions.names))
+        self.reader.at((*subject, "orders"), child(pointer, "orders"))
+        for name, order in document["orders"].items():
+            place = child(pointer, "orders", name)
+            self.reader.at((*subject, "orders", name), place)
+            i = self._index(name, place)
+            if i is not None:
+                orders[i] = order
+        return orders
+
+    def _of(self) -> int | None:
+        nu = self.reactions.nu[0]
+        self.reader.at((*self.subject, "of"), child(self.place, "of"))
+        if "of" in self.rate:
+            return self._index(self.rate["of"], child(self.place, "of"))
+        if np.isin(nu, (-1.0, 0.0, 1.0)).all():
+            # Every substance reacts at the same rate, so it matters not whose is given.
+            return int(np.flatnonzero(nu)[0])
+        self.reader.fault(
+            "rate-of-needed",
+            self.place,
+            "a coefficient of the equation is not 1, so that the substances react at different"
+            " rates: say in 'of' whose rate the law gives",
+        )
+        return None
+
+    def _constant(
+        self, document: Json, pointer: str, subject: Subject, orders: FloatArray
+    ) -> TemperatureDependent | None:
+        said = document["constant"]
+        place, about = child(pointer, "constant"), (*subject, "constant")
+        self.reader.at(about, place)
+        if isinstance(said, RawQuantity):
+            value = self._value(said, place, about, orders)
+            return None if value is None else Constant(value)
+        name = "pre_exponential" if "pre_exponential" in said else "constant"
+        value = self._value(said[name], child(place, name), (*about, name), orders)
+        energy = self.reader.quantity(
+            said["activation_energy"],
+            child(place, "activation_energy"),
+            (*about, "activation_energy"),
+            "molar_energy",
+        )
+        if name == "pre_exponential":
+            if value is None or energy is None:
+                return None
+            return Arrhenius(value, energy.value, said["temperature_exponent"])
+        at = self.reader.quantity(
+            said["at"], child(place, "at"), (*about, "at"), "temperature", above=0
+        )
+        if value is None or energy is None or at is None:
+            return None
+        return ConstantAt(at.value, value, energy.value)
+
+    def _value(
+        self, raw: RawQuantity, pointer: str, subject: Subject, orders: FloatArray
+    ) -> float | None:
+        driving, total = self.rate["driving"], float(orders.sum())
+        found = self.reader.constant(
+            raw,
+            pointer,
+            subject,
+            {spell(expected_unit_parts(driving, total)): expected_unit_exponents(driving, total)},
+            "rate-constant-unit",
+            f"a rate per fluid volume with orders that add up to {total:g} in"
+            f" {driving.replace('-', ' ')} needs",
+        )
+        return None if found is None else found[1]
+
+    def _reverse(self) -> ByAffinity | ReverseConstant | None:
+        said = self.rate.get("reversible")
+        place, about = child(self.place, "reversible"), (*self.subject, "reversible")
+        if said is None:
+            if self.reactions.reactions[0].reversible:
+                self.reader.notes.append(
+                    Note(
+                        "rate-taken-as-irreversible",
+                        "the equation is written both ways and its rate has no 'reversible': the"
+                        " reverse reaction is left out, and so is the limit that equilibrium sets",
+                        "warning",
+                        self.subject,
+                    )
+                )
+            return None
+        self.reader.at(about, place)
+        if "constant" in said:
+            orders = self._orders(said, place, about)
+            constant = self._constant(said, place, about, orders)
+            return None if constant is None else ReverseConstant(constant, orders)
+        equilibrium = self._equilibrium_constant()
+        if equilibrium is None:
+            return None
+        return ByAffinity(equilibrium, said["affinity_exponent"])
+
+    def _equilibrium_constant(self) -> EquilibriumConstant | None:
+        said = self.document.get("equilibrium_constant")
+        place = child(self.pointer, "equilibrium_constant")
+        about: Subject = (*self.subject[:-1], "equilibrium_constant")
+        if said is None:
+            self.reader.fault(
+                "field-needed",
+                place,
+                "a reversible rate by affinity needs the reaction's equilibrium constant; state it,"
+                " or give the reverse rate its own constant and orders",
+            )
+            return None
+        self.reader.at(about, place)
+        total = coefficient_sum(self.reactions.nu[0], self.feed.in_phase)
+        kinds: dict[str, EquilibriumKind] = {}
+        allowed = {}
+        wanted: tuple[EquilibriumKind, ...] = ("pressure", "concentration", "thermodynamic")
+        for kind in wanted[self.feed.phase == "liquid" :]:
+            spelt = spell(equilibrium_unit_parts(kind, total))
+            kinds[spelt] = kind
+            allowed[spelt] = equilibrium_unit_exponents(kind, total)
+        plain = isinstance(said, RawQuantity)
+        raw = said if plain else said["constant"]
+        where = (place, about) if plain else (child(place, "constant"), (*about, "constant"))
+        found = self.reader.constant(
+            raw, *where, allowed, "equilibrium-constant-unit", "the equation as written needs"
+        )
+        if found is None:
+            return None
+        kind, value = kinds[found[0]], found[1]
+        if plain:
+            return EquilibriumConstant(kind, Constant(value))
+        return self._equilibrium_form(said, place, about, kind, value)
+
+    def _equilibrium_form(
+        self, said: Json, pointer: str, subject: Subject, kind: EquilibriumKind, value: float
+    ) -> EquilibriumConstant | None:
+        reader = self.reader
+        form: TemperatureDependent = Constant(value)
+        if ("at" in said) != ("enthalpy" in said):
+            missing = "enthalpy" if "at" in said else "at"
+            reader.fault(
+                "field-needed",
+                child(pointer, missing),
+                "'at' and 'enthalpy' go together: the constant at one temperature, and how it"
+                " changes with it",
+            )
+            return None
+        if "at" in said:
+            at = reader.quantity(
+                said["at"], child(pointer, "at"), (*subject, "at"), "temperature", above=0
+            )
+            place = child(pointer, "enthalpy")
+            enthalpy = reader.quantity(
+                said["enthalpy"], place, (*subject, "enthalpy"), "molar_energy"
+            )
+            if at is None or enthalpy is None:
+                return None
+            form = VantHoff(at.value, value, enthalpy.value)
+        if "standard_pressure" not in said:
+            return EquilibriumConstant(kind, form)
+        standard = reader.quantity(
+            said["standard_pressure"],
+            child(pointer, "standard_pressure"),
+            (*subject, "standard_pressure"),
+            "pressure",
+            above=0,
+            gauge=False,
+        )
+        return None if standard is None else EquilibriumConstant(kind, form, standard.value)
+
+    def _floors(self) -> FloatArray | None:
+        if "floor" not in self.rate:
+            return None
+        dimension = {
+            "concentration": "concentration",
+            "partial-pressure": "pressure",
+            "mole-fraction": "dimensionless",
+        }[self.rate["driving"]]
+        floors = np.zeros(len(self.reactions.names))
+        for name, raw in self.rate["floor"].items():
+            place = child(self.place, "floor", name)
+            found = self.reader.quantity(
+                raw, place, (*self.subject, "floor", name), dimension, above=0, gauge=False
+            )
+            i = self._index(name, place)
+            if found is not None and i is not None:
+                floors[i] = found.value
+        return floors

@@ -1,0 +1,173 @@
+"""The parts that every calculation's request has: substances, reactions, units to report in."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+from marshmallow import fields
+
+from core.dimensions import DIMENSIONS
+from core.errors import Refused, Subject
+from core.reactions.build import ReactionInput, build_reaction_set
+from core.reactions.reaction_set import ReactionSet
+from core.substances.formula import make_substance
+from core.substances.substance import Substance
+from schemas.edge import Json, RequestReader
+from schemas.fields import Choice, List, Map, OneOf, Quantity, Text, describe
+from schemas.rates import RateSchema, equilibrium_constant
+from schemas.shape import ClosedSchema, child
+from schemas.streams import substances_of
+
+MAX_REACTIONS = 50
+EQUATION_PATTERN = r"^[^\x00-\x1f]{1,400}$"
+
+
+class SpeciesSchema(ClosedSchema):
+    """What is declared of a substance."""
+
+    molar_mass = Quantity(metadata=describe("Needed where no formula can be read."))
+    formula = Text(
+        metadata=describe("Left out: the name is read as one, unless molar_mass is given.")
+    )
+    phase = Choice(
+        "gas",
+        "liquid",
+        "solid",
+        metadata=describe("Where it differs from its stream's: a condensed product in a gas."),
+    )
+    registry_number = Text(
+        pattern=r"^[0-9]{2,7}-[0-9]{2}-[0-9]$", wanted='such as "7732-18-5" is allowed'
+    )
+
+
+class ReactionSchema(ClosedSchema):
+    """A reaction, with what a reactor question needs of it."""
+
+    id = Text(metadata=describe("Default: r1, r2, ... by place."))
+    equation = Text(
+        pattern=EQUATION_PATTERN, wanted="1 to 400 characters are allowed", required=True
+    )
+    rate = fields.Nested(RateSchema, metadata=describe("Used by reactor questions."))
+    equilibrium_constant = equilibrium_constant(
+        metadata=describe("Of the equation as written; its unit says which kind it is.")
+    )
+
+
+REPORTABLE = tuple(name for name in DIMENSIONS if name != "dimensionless")
+
+ReportUnitsSchema = ClosedSchema.from_dict(
+    {
+        name: Text(pattern=r"^[^\x00-\x1f]{1,40}$", wanted="a unit is 1 to 40 characters long")
+        for name in REPORTABLE
+    },
+    name="ReportUnitsSchema",
+)
+"""Units to report in: closed keys, one for each dimension."""
+
+
+class AccountSchema(ClosedSchema):
+    """What every request about a mole account says."""
+
+    species = Map(fields.Nested(SpeciesSchema), metadata=describe("Substances, where needed."))
+    reactions = List(
+        OneOf(
+            {
+                "string": Text(pattern=EQUATION_PATTERN, wanted="1 to 400 characters are allowed"),
+                "otherwise": fields.Nested(ReactionSchema),
+            }
+        ),
+        at_most=MAX_REACTIONS,
+        required=True,
+        metadata=describe("Equations, or objects."),
+    )
+    key = Text(required=True, metadata=describe("The key reactant."))
+    atmospheric_pressure = Quantity(
+        metadata=describe("Serves every gauge pressure; default 101.325 kPa.")
+    )
+    report_in = fields.Nested(
+        ReportUnitsSchema, metadata=describe("Units to report in, by dimension.")
+    )
+
+
+def read_reactions(
+    document: Json, reader: RequestReader, streams: Iterable[tuple[Json, str]]
+) -> ReactionSet | None:
+    """Return the reactions among the substances that the request names.
+
+    Parameters
+    ----------
+    document : dict
+        The request, its shape already judged.
+    reader : RequestReader
+        Keeps the faults; with any of them there is no set.
+    streams : iterable of (dict, str)
+        Stream documents and where they stand.
+    """
+    kept = len(reader.faults)
+    names: dict[str, Subject] = {}
+    for stream, pointer in streams:
+        for name, path in substances_of(stream):
+            if name not in names:
+                names[name] = reader.at(("substances", name), child(pointer, *path))
+    declared = {
+        name: _declared(name, said, reader) for name, said in document.get("species", {}).items()
+    }
+    inputs = []
+    for i, said in enumerate(document["reactions"]):
+        place: Subject = ("reactions", i)
+        if isinstance(said, str):
+            reader.at(place, child("/reactions", i))
+            inputs.append(ReactionInput(f"r{i + 1}", said, place))
+        else:
+            reader.at(place, child("/reactions", i, "equation"))
+            inputs.append(ReactionInput(said.get("id", f"r{i + 1}"), said["equation"], place))
+        reader.at(("reactions", inputs[-1].id), child("/reactions", i))
+    try:
+        reactions, notes = build_reaction_set(inputs, declared, names)
+    except Refused as refused:
+        reader.collect(refused)
+        return None
+    reader.notes.extend(notes)
+    return reactions if len(reader.faults) == kept else None
+
+
+def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
+    pointer = child("/species", name)
+    subject = reader.at(("species", name), pointer)
+    molar_mass = None
+    if "molar_mass" in said:
+        molar_mass = reader.quantity(
+            said["molar_mass"],
+            child(pointer, "molar_mass"),
+            (*subject, "molar_mass"),
+            "mass_per_amount",
+            above=0,
+        )
+        if molar_mass is None:
+            return None
+    try:
+        return make_substance(
+            name,
+            subject=subject,
+            formula=said.get("formula"),
+            molar_mass=None if molar_mass is None else molar_mass.value,
+            phase=said.get("phase"),
+        )
+    except Refused as refused:
+        reader.collect(refused)
+        return None
+
+
+def read_key(document: Json, reader: RequestReader, reactions: ReactionSet) -> int:
+    """Return the index of the key reactant; -1 after a fault."""
+    reader.at(("key",), "/key")
+    key = document["key"]
+    found = reactions.find(key)
+    if found is not None:
+        return found
+    reader.fault(
+        "unknown-key",
+        "/key",
+        f"found {key!r}; the substances of this request are {', '.join(reactions.names)}",
+    )
+    return -1

@@ -1,0 +1,368 @@
+"""The stoichiometric table on the wire."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from marshmallow import fields
+
+from core.mole_account.stoichiometric_table import (
+    OutletConditions,
+    StoichiometricTable,
+    TableProblem,
+)
+from core.reactions.reaction_set import ReactionSet
+from core.streams.stream import Stream
+from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.feed import (
+    StreamResultSchema,
+    read_feed,
+    words_of,
+    write_known_stream,
+    write_stream,
+)
+from schemas.fields import Choice, List, Map, Number, Quantity, describe
+from schemas.requests import AccountSchema, read_key, read_reactions
+from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
+from schemas.shape import ClosedSchema, child, load
+from schemas.streams import StreamSchema
+
+MAX_CONVERSIONS = 1000
+
+
+class OutletConditionsSchema(ClosedSchema):
+    """Conditions of the outlet; each left out is that of the feed."""
+
+    temperature = Quantity()
+    pressure = Quantity()
+    compressibility = Number(above=0, at_most=10)
+
+
+class StoichiometricTableRequest(AccountSchema):
+    """A feed, and the conversions or extents to keep its account at."""
+
+    feed = fields.Nested(StreamSchema, required=True)
+    conversions = List(
+        Quantity(),
+        at_most=MAX_CONVERSIONS,
+        metadata=describe("Of the key. Exactly one of conversions and extents."),
+    )
+    extents = Map(
+        Quantity(),
+        at_most=50,
+        metadata=describe("By reaction; one left out is zero."),
+    )
+    outlet = fields.Nested(OutletConditionsSchema)
+    hold = Choice(
+        "volume",
+        "pressure",
+        metadata=describe("What a batch of gas keeps; default volume. Batches only."),
+    )
+
+
+_REQUEST = StoichiometricTableRequest()
+
+
+def read(document: Any) -> tuple[TableProblem, EdgeMap]:
+    """Return the problem that a request states, and its edge map.
+
+    Raises
+    ------
+    ShapeError, MeaningError
+    """
+    request = load(_REQUEST, document)
+    reader = RequestReader.of(request)
+    reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
+    problem = None
+    if reactions is not None:
+        problem = _read_problem(request, reader, reactions)
+    edge = reader.finish(request.get("report_in"))
+    assert problem is not None
+    return problem, edge
+
+
+def _read_problem(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> TableProblem | None:
+    key = read_key(request, reader, reactions)
+    inlet = read_feed(request["feed"], "/feed", reader, reactions)
+    outlet = _read_outlet(request.get("outlet", {}), reader)
+    asked = _read_asked(request, reader, reactions, inlet)
+    if "hold" in request and (inlet is None or not inlet.batch):
+        reader.fault("field-not-used", "/hold", "a flow holds nothing; state 'amounts', a batch")
+    if inlet is None:
+        return None
+    return TableProblem(
+        reactions=reactions,
+        key=key,
+        inlet=inlet,
+        outlet=outlet,
+        hold=request.get("hold", "volume"),
+        **asked,
+    )
+
+
+def _read_outlet(document: Json, reader: RequestReader) -> OutletConditions:
+    reader.at(("outlet",), "/outlet")
+    stated = {}
+    for name in ("temperature", "pressure"):
+        if name in document:
+            found = reader.quantity(
+                document[name], child("/outlet", name), ("outlet", name), name, above=0
+            )
+            stated[name] = None if found is None else found.value
+    return OutletConditions(compressibility=document.get("compressibility"), **stated)
+
+
+def _read_asked(
+    request: Json, reader: RequestReader, reactions: ReactionSet, inlet: Stream | None
+) -> Json:
+    conversions, extents = request.get("conversions"), request.get("extents")
+    if (conversions is None) == (extents is None):
+        found = "neither" if conversions is None else "both"
+        reader.fault(
+            "conversions-or-extents", "", f"found {found}; state 'conversions' or 'extents'"
+        )
+        return {}
+    if conversions is not None:
+        reader.at(("conversions",), "/conversions")
+        found_all = [
+            reader.quantity(raw, f"/conversions/{i}", ("conversions", i), "dimensionless")
+            for i, raw in enumerate(conversions)
+        ]
+        values = [found.value for found in found_all if found is not None]
+        return {"conversions": np.array(values)}
+    assert extents is not None
+    reader.at(("extents",), "/extents")
+    dimension = words_of(inlet is not None and inlet.batch).flow_dimension
+    ids = [reaction.id for reaction in reactions.reactions]
+    row = np.zeros(len(ids))
+    for name, raw in extents.items():
+        pointer = child("/extents", name)
+        if name not in ids:
+            reader.fault(
+                "unknown-reaction", pointer, f"found {name!r}; the reactions are {', '.join(ids)}"
+            )
+            continue
+        extent = reader.quantity(raw, pointer, ("extents", name), dimension)
+        if extent is not None:
+            row[ids.index(name)] = extent.value
+    return {"extents": row[None, :]}
+
+
+class SpeciesRoleSchema(OpenSchema):
+    """What a substance is to the account."""
+
+    role = fields.String(
+        required=True, metadata=describe("", enum=["key", "reactant", "product", "inert"])
+    )
+    coefficients = Map(fields.Float(), at_least=0, metadata=describe("By reaction."))
+    theta = fields.Nested(NumberSchema, required=True)
+
+
+class ExpressionSchema(OpenSchema):
+    """Flow (batch: amount) and concentration as formulas."""
+
+    flow = fields.String()
+    amount = fields.String()
+    concentration = fields.String()
+
+
+class StateSchema(OpenSchema):
+    """The account at one conversion, or at one set of extents."""
+
+    conversion = fields.Nested(NumberSchema, required=True)
+    extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
+    changes = numbers_by_name(text="By substance.")
+    changes_by_reaction = Map(
+        numbers_by_name(),
+        at_least=0,
+        metadata=describe("For several reactions: by reaction, then by substance."),
+    )
+    outlet = fields.Nested(StreamResultSchema, required=True)
+    constant_flow_error = number(
+        "(1 + epsilon X)(T/T0)(P0/P)(Z/Z0) - 1: what the constant-flow equations put on"
+        " concentrations."
+    )
+
+
+class ConstantFlowSchema(OpenSchema):
+    """Whether the constant-flow equations hold here, and which condition fails."""
+
+    holds = fields.Boolean(required=True)
+    fails_because = fields.List(
+        fields.String(
+            metadata=describe(
+                "",
+                enum=[
+                    "moles-change",
+                    "temperature-changes",
+                    "pressure-changes",
+                    "compressibility-changes",
+                ],
+            )
+        ),
+        required=True,
+    )
+
+
+class StoichiometricTableResult(OpenSchema):
+    """The stoichiometric table."""
+
+    key = fields.String(required=True)
+    limiting = fields.String(required=True, allow_none=True)
+    largest_conversion = number(required=True)
+    smallest_conversion = number("Where a reaction is reversible: the reverse limit.")
+    delta = number("For one reaction.")
+    epsilon = number("For one reaction; over the substances of the stream's own phase.")
+    key_mole_fraction = number("Of the feed's own phase.")
+    species = numbers_by_name(SpeciesRoleSchema, required=True)
+    inlet = fields.Nested(StreamResultSchema, required=True)
+    states = fields.List(fields.Nested(StateSchema), required=True)
+    expressions = numbers_by_name(ExpressionSchema)
+    constant_flow = fields.Nested(ConstantFlowSchema, required=True)
+
+
+StoichiometricTableAnswer = envelope("StoichiometricTableAnswer", StoichiometricTableResult)
+
+METHOD = "mole account in extents of reaction, F = F0 + xi nu; limits by linear programming"
+
+
+def write(table: StoichiometricTable, edge: EdgeMap) -> Answer:
+    """Return the answer that holds a table."""
+    problem, reach = table.problem, table.range
+    reactions, names = problem.reactions, problem.reactions.names
+    result: Json = {
+        "key": names[problem.key],
+        "limiting": None if reach.limiting is None else names[reach.limiting],
+        "largest_conversion": _plain(reach.largest),
+    }
+    if any(reaction.reversible for reaction in reactions.reactions):
+        result["smallest_conversion"] = _plain(reach.smallest)
+    if table.delta is not None and table.epsilon is not None:
+        result["delta"], result["epsilon"] = _plain(table.delta), _plain(table.epsilon)
+    if table.key_mole_fraction is not None:
+        result["key_mole_fraction"] = _plain(table.key_mole_fraction)
+    result["species"] = _species(table)
+    result["inlet"] = write_known_stream(edge, names, problem.inlet)
+    result["states"] = _states(table, edge)
+    word = words_of(problem.inlet.batch).flow
+    result["expressions"] = {
+        name: {word: flow}
+        if concentration is None
+        else {word: flow, "concentration": concentration}
+        for name, (flow, concentration) in zip(names, table.expressions, strict=True)
+    }
+    result["constant_flow"] = {"holds": table.holds, "fails_because": list(table.fails_because)}
+    return Answer(
+        result=result,
+        notes=edge.notes((*edge.read_notes, *table.notes)),
+        assumed=edge.notes((*edge.read_assumed, *table.assumed)),
+        method=METHOD,
+        data=ATOMIC_WEIGHTS,
+        table=lambda: _table(table, edge),
+    )
+
+
+def _plain(value: float) -> Json:
+    return {"value": value, "unit": "1"}
+
+
+def _species(table: StoichiometricTable) -> Json:
+    reactions = table.problem.reactions
+    ids = [reaction.id for reaction in reactions.reactions]
+    species: Json = {}
+    for name, role, theta, column in zip(
+        reactions.names, table.roles, table.theta.tolist(), reactions.nu.T.tolist(), strict=True
+    ):
+        said: Json = {"role": role}
+        if role != "inert":
+            said["coefficients"] = {j: nu for j, nu in zip(ids, column, strict=True) if nu}
+        said["theta"] = _plain(theta)
+        species[name] = said
+    return species
+
+
+def _states(table: StoichiometricTable, edge: EdgeMap) -> list[Json]:
+    problem, states = table.problem, table.states
+    reactions, names, inlet = problem.reactions, problem.reactions.names, problem.inlet
+    ids = [reaction.id for reaction in reactions.reactions]
+    scale = edge.scales[words_of(inlet.batch).flow_dimension]
+
+    def flows(labels: Any, values: Any) -> Json:
+        return {
+            label: {"value": value / scale.factor, "unit": scale.unit}
+            for label, value in zip(labels, values, strict=True)
+        }
+
+    written = []
+    for k, conversion in enumerate(states.conversions.tolist()):
+        state: Json = {"conversion": edge.number(conversion, "dimensionless")}
+        extents = None if states.extents is None else states.extents[k]
+        state["extents"] = dict.fromkeys(ids) if extents is None else flows(ids, extents.tolist())
+        state["changes"] = flows(names, states.changes[k].tolist())
+        if len(ids) > 1 and extents is not None:
+            state["changes_by_reaction"] = {
+                id_: flows(names, (xi * nu).tolist())
+                for id_, xi, nu in zip(ids, extents, reactions.nu, strict=True)
+            }
+        volumes, pressures = states.volumetric_flows, states.pressures
+        state["outlet"] = write_stream(
+            edge,
+            names,
+            states.flows[k],
+            inlet.in_phase,
+            batch=inlet.batch,
+            volume=None if volumes is None else float(volumes[k]),
+            temperature=states.temperature,
+            pressure=None if pressures is None else float(pressures[k]),
+            compressibility=states.compressibility,
+        )
+        state["constant_flow_error"] = _plain(float(states.constant_flow_error[k]))
+        written.append(state)
+    return written
+
+
+def _table(table: StoichiometricTable, edge: EdgeMap) -> Table:
+    """Return the table as rows, one for each substance of each state."""
+    problem, states = table.problem, table.states
+    names, inlet = problem.reactions.names, problem.inlet
+    words = words_of(inlet.batch)
+    flow = edge.scales[words.flow_dimension]
+    concentration = edge.scales["concentration"]
+    count = states.conversions.size
+    columns: dict[str, list[Any]] = {
+        "conversion": np.repeat(states.conversions, len(names)).tolist(),
+        "substance": list(names) * count,
+        "role": list(table.roles) * count,
+    }
+    for reaction, nu in zip(
+        problem.reactions.reactions, problem.reactions.nu.tolist(), strict=True
+    ):
+        columns[f"coefficient {reaction.id}"] = nu * count
+    columns["theta"] = table.theta.tolist() * count
+    columns[f"inlet {words.flow}"] = (inlet.flows / flow.factor).tolist() * count
+    columns["change"] = (states.changes / flow.factor).ravel().tolist()
+    columns[f"outlet {words.flow}"] = (states.flows / flow.factor).ravel().tolist()
+    columns["mole fraction"] = _cells(states.mole_fractions.ravel())
+    concentrations = states.concentrations
+    columns["concentration"] = (
+        [None] * (count * len(names))
+        if concentrations is None
+        else _cells(concentrations.ravel() / concentration.factor)
+    )
+    columns["constant-flow error"] = np.repeat(states.constant_flow_error, len(names)).tolist()
+    units = {
+        f"inlet {words.flow}": flow.unit,
+        "change": flow.unit,
+        f"outlet {words.flow}": flow.unit,
+        "concentration": concentration.unit,
+    }
+    return Table(columns, units)
+
+
+def _cells(values: Any) -> list[float | None]:
+    """Return numbers, with None for a substance outside the phase."""
+    return [None if value != value else value for value in values.tolist()]

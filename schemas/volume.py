@@ -1,0 +1,363 @@
+"""The reactor size that a target needs, on the wire."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import numpy as np
+from marshmallow import fields
+
+from core.constants import NORMAL_MOLAR_VOLUME
+from core.errors import Note, Refused, Subject
+from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.mole_account.targets import DIMENSIONS as TARGET_DIMENSIONS
+from core.mole_account.targets import conversion_for
+from core.reactions.reaction_set import ReactionSet
+from core.reactors.kinds import REACTOR_KINDS
+from core.reactors.sizing import Sizing, SizingProblem
+from core.streams.stream import Stream
+from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.feed import (
+    StreamResultSchema,
+    read_feed,
+    words_of,
+    write_known_stream,
+)
+from schemas.fields import Choice, Map, Number, OneOf, Quantity, Tagged, Text, describe
+from schemas.rates import read_rate
+from schemas.requests import AccountSchema, read_key, read_reactions
+from schemas.results import NumberSchema, OpenSchema, TableSchema, envelope, number
+from schemas.shape import ClosedSchema, child, load
+from schemas.streams import StreamSchema
+
+
+class PlugFlowSchema(ClosedSchema):
+    """Plug flow."""
+
+    kind = Choice("plug-flow", required=True)
+
+
+class StirredTankSchema(ClosedSchema):
+    """One ideally mixed tank."""
+
+    kind = Choice("stirred-tank", required=True)
+
+
+class TanksInSeriesSchema(ClosedSchema):
+    """Equal ideally mixed tanks, one after the other."""
+
+    kind = Choice("tanks-in-series", required=True)
+    number = Number(at_least=1, at_most=100, integer=True, required=True)
+
+
+class BatchSchema(ClosedSchema):
+    """A batch; a gas holds its volume or its pressure."""
+
+    kind = Choice("batch", required=True)
+    hold = Choice("volume", "pressure", load_default="volume")
+
+
+REACTOR_SCHEMAS: dict[str, type[ClosedSchema]] = {
+    "plug-flow": PlugFlowSchema,
+    "stirred-tank": StirredTankSchema,
+    "tanks-in-series": TanksInSeriesSchema,
+    "batch": BatchSchema,
+}
+"""One schema for each kind of :data:`core.reactors.REACTOR_KINDS`."""
+
+
+class IsothermalSchema(ClosedSchema):
+    """The temperature of the feed throughout."""
+
+    mode = Choice("isothermal", required=True)
+
+
+class ConversionTargetSchema(ClosedSchema):
+    """A conversion of the key."""
+
+    conversion = Quantity(required=True)
+
+
+class SpeciesTargetSchema(ClosedSchema):
+    """A flow, mole fraction, concentration or yield of a substance; exactly one of them."""
+
+    species = Text(required=True)
+    flow = Quantity()
+    mole_fraction = Quantity()
+    concentration = Quantity()
+    yield_ = Quantity(data_key="yield", metadata=describe("On key basis."))
+
+
+class VolumeRequest(AccountSchema):
+    """A feed, a reaction with its rate, a kind of reactor and a target."""
+
+    feed = fields.Nested(StreamSchema, required=True)
+    reactor = Tagged("kind", REACTOR_SCHEMAS, required=True)
+    thermal = Tagged(
+        "mode", {"isothermal": IsothermalSchema}, metadata=describe("Default: isothermal.")
+    )
+    target = OneOf(
+        {
+            "species": fields.Nested(SpeciesTargetSchema),
+            "otherwise": fields.Nested(ConversionTargetSchema),
+        },
+        required=True,
+    )
+
+
+_REQUEST = VolumeRequest()
+
+
+def read(document: Any) -> tuple[SizingProblem, EdgeMap]:
+    """Return the problem that a request states, and its edge map.
+
+    Raises
+    ------
+    ShapeError, MeaningError
+    """
+    request = load(_REQUEST, document)
+    reader = RequestReader.of(request)
+    reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
+    problem = None
+    if reactions is not None:
+        problem = _read_problem(request, reader, reactions)
+    edge = reader.finish(request.get("report_in"))
+    assert problem is not None
+    return problem, edge
+
+
+def _read_problem(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> SizingProblem | None:
+    key = read_key(request, reader, reactions)
+    feed = read_feed(request["feed"], "/feed", reader, reactions)
+    said = request["reactions"][0]
+    if len(reactions.reactions) > 1:
+        reader.fault(
+            "one-reaction-only",
+            "/reactions",
+            f"found {len(reactions.reactions)}; this release sizes reactors for one reaction",
+        )
+        return None
+    if isinstance(said, str) or "rate" not in said:
+        reader.fault(
+            "field-needed",
+            "/reactions/0/rate",
+            "a reactor is sized by the rate of its reaction; write the reaction as an object with"
+            " 'equation' and 'rate'",
+        )
+        return None
+    if feed is None or key < 0:
+        return None
+    kind = request["reactor"]["kind"]
+    reader.at(("reactor",), "/reactor")
+    rate = read_rate(said, "/reactions/0", reader, reactions, feed)
+    options = {name: value for name, value in request["reactor"].items() if name != "kind"}
+    reactor = REACTOR_KINDS[kind](**options)
+    held = feed.phase == "liquid" or options.get("hold") == "volume"
+    target = _read_target(request["target"], reader, reactions, key, feed, held)
+    if rate is None or target is None:
+        return None
+    return SizingProblem(reactions, key, feed, rate, np.asarray(target), reactor)
+
+
+def _read_target(
+    said: Json,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    key: int,
+    feed: Stream,
+    constant_volume: bool,
+) -> float | None:
+    subject: Subject = reader.at(("target",), "/target")
+    if "conversion" in said:
+        place = "/target/conversion"
+        found = reader.quantity(
+            said["conversion"], place, ("target", "conversion"), "dimensionless"
+        )
+        return None if found is None else found.value
+    name = said["species"]
+    substance = reactions.find(name)
+    if substance is None:
+        reader.fault(
+            "unknown-substance",
+            "/target/species",
+            f"found {name!r}; the substances of this request are {', '.join(reactions.names)}",
+        )
+        return None
+    stated = [kind for kind in TARGET_DIMENSIONS if kind.replace("yield", "yield_") in said]
+    if len(stated) != 1:
+        found_text = ", ".join(stated) or "none of them"
+        reader.fault(
+            "target-form",
+            "/target",
+            f"found {found_text}; state exactly one of {', '.join(TARGET_DIMENSIONS)}",
+        )
+        return None
+    kind = stated[0]
+    dimension = words_of(feed.batch).flow_dimension if kind == "flow" else TARGET_DIMENSIONS[kind]
+    raw = said["yield_" if kind == "yield" else kind]
+    place = child("/target", kind)
+    found = reader.quantity(raw, place, ("target", kind), dimension, at_least=0)
+    if found is None or not feed.flows[key] > 0 or not reactions.nu[0, key] < 0:
+        # What is wrong with the key is told where the problem is computed.
+        return None if found is None else 0.5
+    reader.at(("target", "conversion"), place)
+    try:
+        return conversion_for(
+            reactions,
+            key,
+            feed,
+            substance,
+            kind,
+            found.value,
+            constant_volume=constant_volume,
+            subject=subject,
+        )
+    except Refused as refused:
+        reader.collect(refused)
+        return None
+
+
+class EquilibriumSchema(OpenSchema):
+    """The limit that equilibrium sets."""
+
+    conversion = number("At the outlet's temperature.", required=True)
+
+
+class EquilibriumLimitSchema(OpenSchema):
+    """Equilibrium, for a reversible rate."""
+
+    at_outlet_temperature = fields.Nested(EquilibriumSchema, required=True)
+
+
+class VolumeResult(OpenSchema):
+    """The size, and what comes out of it."""
+
+    volume = number("Of the reactor, all tanks together; of a batch, at the start.")
+    time = number("Of a batch.")
+    conversion = number(required=True)
+    largest_conversion = number(
+        "Of the key on this way: at equilibrium, or where a substance is used up.", required=True
+    )
+    bounded_by = fields.String(
+        required=True,
+        metadata=describe(
+            "What sets largest_conversion.", enum=["equilibrium", "limiting-reactant"]
+        ),
+    )
+    limiting = fields.String(metadata=describe("The substance that would be used up."))
+    space_time = number("Volume over volumetric flow at inlet conditions.")
+    space_velocities = Map(
+        fields.Nested(NumberSchema),
+        at_least=0,
+        metadata=describe(
+            "Hourly: gas (inlet at 273.15 K and 101.325 kPa per volume), liquid (inlet volume per"
+            " volume)."
+        ),
+    )
+    mean_residence_time = number("Integral of dV/v; of a tank V/v at its outlet.")
+    outlet_rate = number("Rate of the key's consumption at the outlet.")
+    inlet = fields.Nested(StreamResultSchema, required=True)
+    outlet = fields.Nested(StreamResultSchema, required=True)
+    equilibrium = fields.Nested(EquilibriumLimitSchema)
+    tank_conversions = fields.List(
+        fields.Nested(NumberSchema), metadata=describe("Of tanks in series, in order.")
+    )
+    profile = fields.Nested(TableSchema, metadata=describe("Along plug flow, or over a batch."))
+
+
+VolumeAnswer = envelope("VolumeAnswer", VolumeResult)
+
+
+PROFILE_POINTS = 21
+METHOD = (
+    "one isothermal reaction by a power law; plug flow and batch by adaptive Gauss-Kronrod"
+    " quadrature in -ln(1 - X/X_limit), tanks by their steady-state balance"
+)
+SCREENING = Note(
+    "screening-calculation",
+    "a screening calculation for ideal reactors at constant temperature: no relief, runaway or"
+    " flammability assessment. Follow local codes and licensed practice.",
+    "caution",
+)
+
+
+def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
+    """Return the answer that holds a size."""
+    names, feed = problem.reactions.names, problem.feed
+    batch = problem.reactor.size_dimension == "time"
+    limit = sizing.limit
+    at_equilibrium = bool(limit.at_equilibrium)
+    result: Json = {}
+    size = float(sizing.size)
+    feed_volume = feed.volumetric_flow
+    assert feed_volume is not None
+    result["volume"] = edge.number(float(feed_volume) if batch else size, "volume")
+    if batch:
+        result["time"] = edge.number(size, "time")
+    result["conversion"] = edge.number(float(sizing.conversion), "dimensionless")
+    result["largest_conversion"] = edge.number(float(limit.conversion), "dimensionless")
+    result["bounded_by"] = "equilibrium" if at_equilibrium else "limiting-reactant"
+    if not at_equilibrium:
+        result["limiting"] = names[int(limit.substance)]
+    if sizing.space_time is not None and sizing.mean_residence_time is not None:
+        result["space_time"] = edge.number(float(sizing.space_time), "time")
+        if size > 0:
+            result["space_velocities"] = _space_velocities(feed, size, edge)
+        result["mean_residence_time"] = edge.number(float(sizing.mean_residence_time), "time")
+    result["outlet_rate"] = edge.number(float(sizing.outlet_rate), "reaction_rate")
+    result["inlet"] = write_known_stream(edge, names, feed)
+    result["outlet"] = write_known_stream(edge, names, sizing.outlet)
+    if problem.rate.reverse is not None and at_equilibrium:
+        number_ = edge.number(float(limit.conversion), "dimensionless")
+        result["equilibrium"] = {"at_outlet_temperature": {"conversion": number_}}
+    if sizing.tanks is not None and sizing.tanks.conversion.shape[-1] > 1:
+        result["tank_conversions"] = [
+            edge.number(x, "dimensionless") for x in sizing.tanks.conversion.tolist()
+        ]
+    if sizing.profile is not None:
+        result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
+    return Answer(
+        result=result,
+        notes=edge.notes((*edge.read_notes, *sizing.notes, SCREENING)),
+        assumed=edge.notes((*edge.read_assumed, *_assumed(problem))),
+        method=METHOD,
+        data=ATOMIC_WEIGHTS,
+    )
+
+
+def _space_velocities(feed: Stream, volume: float, edge: EdgeMap) -> Json:
+    """Return hourly space velocities, each on its stated basis."""
+    if feed.phase == "gas":
+        normal = float(feed.phase_total) * NORMAL_MOLAR_VOLUME
+        return {"gas": edge.number(normal / volume, "frequency")}
+    flow = feed.volumetric_flow
+    assert flow is not None
+    return {"liquid": edge.number(float(flow) / volume, "frequency")}
+
+
+def _profile(sizing: Sizing, dimension: str, edge: EdgeMap) -> Table:
+    profile = sizing.profile
+    assert profile is not None
+    size, rate = edge.scales[dimension], edge.scales["reaction_rate"]
+    return Table(
+        {
+            dimension: (profile.size / size.factor).tolist(),
+            "conversion": profile.conversion.tolist(),
+            "rate": (profile.rate / rate.factor).tolist(),
+        },
+        {dimension: size.unit, "conversion": "1", "rate": rate.unit},
+    )
+
+
+def _assumed(problem: SizingProblem) -> list[Note]:
+    feed = problem.feed
+    if feed.phase == "liquid":
+        return [CONSTANT_DENSITY]
+    if feed.batch and getattr(problem.reactor, "hold", "pressure") == "volume":
+        return []
+    return [
+        Note("constant-pressure", "the pressure is that of the feed throughout"),
+    ]

@@ -1,0 +1,117 @@
+"""What every calculating route shares: read the body, compute, answer in the form asked for."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from importlib.metadata import PackageNotFoundError, version
+from typing import Any
+
+import orjson
+from flask import Blueprint, Response, request
+
+from schemas.answer import Answer
+from schemas.contract import Operation
+from service import logs
+from service.body import read_json
+from service.digest import digest
+from service.problem_details import HttpFault
+from service.tables import to_csv
+
+CSV = "text/csv"
+JSON = "application/json"
+HTML = "text/html"
+
+try:
+    RELEASE = version("molwright")
+except PackageNotFoundError:
+    RELEASE = "0.0.0+tree"
+
+
+def calculation(
+    blueprint: Blueprint, operation: Operation
+) -> Callable[[Callable[[Any], Answer]], Callable[[Any], Answer]]:
+    """Serve a function from a JSON document to an :class:`Answer` as the operation's route."""
+
+    def serve(answer: Callable[[Any], Answer]) -> Callable[[Any], Answer]:
+        def view() -> Response:
+            media = negotiate(*operation.media_types)
+            pretty = pretty_asked()
+            document = read_json(request)
+            # Cached by read_json: the body is not read a second time.
+            name, of = digest(document, request.get_data(cache=True))
+            logs.annotate(digest=name)
+            answered = answer(document)
+            if media == CSV and answered.table is not None:
+                return _respond(to_csv(answered.table()).encode(), f"{CSV}; charset=utf-8")
+            return json_response(answered.document(RELEASE, name, of), pretty=pretty)
+
+        blueprint.add_url_rule(
+            operation.path, operation.name, view, methods=["POST"], provide_automatic_options=False
+        )
+        return answer
+
+    return serve
+
+
+def _respond(body: bytes, content_type: str) -> Response:
+    response = Response(body, 200, content_type=content_type)
+    response.headers["Vary"] = "Accept"
+    return response
+
+
+def json_response(document: Any, *, pretty: bool = False) -> Response:
+    """Return a JSON document as a response that ends in a newline."""
+    option = orjson.OPT_APPEND_NEWLINE | (orjson.OPT_INDENT_2 if pretty else 0)
+    return _respond(orjson.dumps(document, option=option), JSON)
+
+
+def negotiate(*offered: str) -> str:
+    """Return the media type to answer in; the first offered where the client does not mind.
+
+    Raises
+    ------
+    HttpFault
+        406, when nothing offered is accepted.
+    """
+    accept = request.accept_mimetypes
+    if not accept.provided:
+        return offered[0]
+    chosen = accept.best_match(offered)
+    if chosen is None:
+        raise HttpFault(
+            406,
+            "not-acceptable",
+            f"found Accept: {str(accept)[:80]}; this route answers {' or '.join(offered)}",
+            header="Accept",
+        )
+    return chosen
+
+
+def pretty_asked(*also: str) -> bool:
+    """Return whether ``?pretty=1`` was asked for; other parameters are refused.
+
+    Raises
+    ------
+    HttpFault
+        400, for a parameter that the route does not know.
+    """
+    if not request.query_string:
+        return False
+    for name in request.args:
+        if name != "pretty" and name not in also:
+            raise HttpFault(
+                400,
+                "unknown-parameter",
+                f"no query parameter {name[:80]!r} is known; allowed: "
+                + ", ".join(("pretty", *also)),
+                parameter=name[:80],
+            )
+    pretty = request.args.getlist("pretty")
+    if any(value not in ("0", "1") for value in pretty) or len(pretty) > 1:
+        raise HttpFault(
+            400,
+            "unknown-parameter",
+            f"found pretty={pretty[0][:80]!r}; allowed: pretty=1 or pretty=0, once",
+            parameter="pretty",
+        )
+    return pretty == ["1"]

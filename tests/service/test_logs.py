@@ -1,0 +1,120 @@
+import json
+import logging
+import os
+import warnings
+
+import flask
+import pytest
+
+from service import logs
+
+
+@pytest.fixture
+def app():
+    made = flask.Flask("logged")
+
+    @made.get("/things/<name>")
+    def thing(name):
+        logs.annotate(digest="sha256:0")
+        return name
+
+    @made.get("/fails")
+    def fails():
+        raise ValueError("a failure")
+
+    @made.get("/warns")
+    def warns():
+        logging.getLogger("somewhere").warning("take %s", "care")
+        return ""
+
+    logs.log_requests(made)
+    return made
+
+
+@pytest.fixture
+def lines(capfd):
+    """Return what was logged since the last call, parsed."""
+
+    def read():
+        return [json.loads(line) for line in capfd.readouterr().out.splitlines()]
+
+    return read
+
+
+@pytest.fixture
+def configured():
+    """Log as a server process does, for one test."""
+    root = logging.getLogger()
+    before = root.handlers[:], root.level
+    logs.configure("warning")
+    yield
+    logging.captureWarnings(capture=False)
+    root.handlers, root.level = before
+
+
+def test_a_request_is_one_line_with_its_rule_and_what_was_added(app, lines):
+    app.test_client().get("/things/secret?query=secret", headers={"X-Request-ID": "r.1"})
+    (line,) = lines()
+    assert "secret" not in str(line)
+    assert line.pop("time")
+    assert line.pop("milliseconds") > 0
+    assert line == {
+        "level": "info",
+        "event": "request",
+        "request_id": "r.1",
+        "method": "GET",
+        "route": "/things/<name>",
+        "status": 200,
+        "digest": "sha256:0",
+    }
+
+
+def test_ids_of_requests_without_one_differ(app):
+    client = app.test_client()
+    assert len({client.get("/things/a").headers["X-Request-ID"] for _ in range(100)}) == 100
+
+
+@pytest.mark.usefixtures("configured")
+@pytest.mark.parametrize("propagate", [False, True])
+def test_a_failure_is_a_line_even_where_nothing_answers_it(app, lines, propagate):
+    app.config["PROPAGATE_EXCEPTIONS"] = propagate
+    if propagate:
+        with pytest.raises(ValueError, match="a failure"):
+            app.test_client().get("/fails")
+    else:
+        app.test_client().get("/fails")
+    *before, line = lines()
+    assert (line["level"], line["status"]) == ("error", 500)
+    if not propagate:
+        (traceback,) = before
+        assert "ValueError: a failure" in traceback["exception"]
+        assert traceback["request_id"] == line["request_id"]
+
+
+@pytest.mark.usefixtures("configured")
+def test_other_loggers_and_warnings_come_out_the_same_way(app, lines):
+    app.test_client().get("/warns", headers={"X-Request-ID": "w"})
+    logging.getLogger("elsewhere").info("below the level")
+    with warnings.catch_warnings():
+        warnings.simplefilter("always")
+        warnings.warn("worn", stacklevel=1)
+    said, request, warned = lines()
+    assert (said["event"], said["logger"], said["level"]) == ("take care", "somewhere", "warning")
+    assert said["request_id"] == request["request_id"] == "w"
+    assert warned["logger"] == "py.warnings"
+    assert "worn" in warned["event"]
+    assert "request_id" not in warned
+
+
+def test_an_answer_does_not_depend_on_its_log(app):
+    kept = os.dup(1)
+    reader, writer = os.pipe()
+    os.close(reader)  # whoever read the log went away
+    os.dup2(writer, 1)
+    try:
+        answer = app.test_client().get("/things/a")
+    finally:
+        os.dup2(kept, 1)
+        os.close(kept)
+        os.close(writer)
+    assert answer.status_code == 200
