@@ -11,6 +11,7 @@ from werkzeug.exceptions import HTTPException
 
 from core.problems import CATALOGUE
 from schemas.shape import LocatedFault, MeaningError, RequestError, ShapeError
+from service import logs
 
 PROBLEM_JSON = "application/problem+json"
 MAX_ERRORS = 100
@@ -40,6 +41,7 @@ HTTP_CODES = {
 
 def problem(status: int, code: str, detail: str, faults: Sequence[LocatedFault] = ()) -> Response:
     """Return a problem document as a response."""
+    logs.annotate(code=code)
     document: dict[str, Any] = {
         "type": f"/problems/{code}",
         "title": CATALOGUE[code].title,

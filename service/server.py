@@ -9,6 +9,9 @@ from __future__ import annotations
 import contextlib
 import math
 import os
+import socket
+import struct
+import sys
 from collections.abc import Callable
 from dataclasses import dataclass
 from http import HTTPStatus
@@ -128,6 +131,12 @@ class _Logger(glogging.Logger):  # type: ignore[misc]
         super().setup(cfg)
         self.error_log.propagate = True
 
+    def exception(self, msg: str, *args: Any, **kwargs: Any) -> None:
+        if isinstance(sys.exception(), BlockingIOError):  # see _SILENCE
+            self.info("a client fell silent in the middle of a request")
+        else:
+            super().exception(msg, *args, **kwargs)
+
 
 class _Response(wsgi.Response):  # type: ignore[misc]
     """An answer that does not say which server made it."""
@@ -179,13 +188,21 @@ def _fault(exc: BaseException) -> tuple[int, str, str]:
     return STATUSES[code], code, detail
 
 
-class _Worker(ThreadWorker):  # type: ignore[misc]
-    """gunicorn's threaded worker, with two differences.
+_SILENCE = struct.pack("ll", 30, 0)
+"""How long a client may say or take nothing, as the kernel wants it: s, us."""
 
-    What it refuses before the application sees a request is a problem document
-    like any other. And on a stop it takes in the connections that wait in the
-    queue and closes the queue at once: whoever comes later is refused, and may
-    safely go elsewhere, where a reset would leave open what became of the request.
+
+class _Worker(ThreadWorker):  # type: ignore[misc]
+    """gunicorn's threaded worker, with its manners mended.
+
+    * What it refuses before the application sees a request is a problem
+      document like any other.
+    * A client holds its own thread and nothing else: not the loop that serves
+      all while its connection is closed, not for ever when it falls silent; and
+      a worker without a free thread leaves new connections to the others.
+    * On a stop it takes in the connections that wait in the queue and closes the
+      queue at once: whoever comes later is refused, and may safely go elsewhere,
+      where a reset would leave open what became of the request.
     """
 
     _requests = logs.logger()
@@ -211,6 +228,25 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
         with contextlib.suppress(OSError):  # the client may be gone
             util.write_nonblock(client, head.encode() + body)
 
+    def handle(self, conn: Any) -> Any:
+        conn.sock.setsockopt(socket.SOL_SOCKET, socket.SO_RCVTIMEO, _SILENCE)
+        conn.sock.setsockopt(socket.SOL_SOCKET, socket.SO_SNDTIMEO, _SILENCE)
+        again = super().handle(conn)
+        if again is False:
+            # gunicorn would wait in its loop, up to 2 s, for the client to close its side.
+            conn.close(graceful=True)
+            conn.close = _already_closed
+        return again
+
+    @property
+    def worker_connections(self) -> int:
+        waiting = len(self.keepalived_conns) + len(self.pending_conns)
+        return min(self.cfg.worker_connections, self.cfg.threads + waiting)
+
+    @worker_connections.setter
+    def worker_connections(self, _configured: int) -> None:
+        pass  # asked of the configuration, above
+
     def set_accept_enabled(self, enabled: bool) -> None:
         super().set_accept_enabled(enabled)
         if not enabled and not self.alive:
@@ -222,6 +258,10 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
                     waiting = self.nr_conns > before
                 listener.close()
             self.sockets = []
+
+
+def _already_closed(graceful: bool = False) -> None:
+    pass
 
 
 def _refuse_body(exc: BaseException) -> flask.Response:
