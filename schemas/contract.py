@@ -104,7 +104,11 @@ OPERATIONS = (
     ),
     Operation("contract", "GET", "/v1/openapi.json", "this contract"),
     Operation(
-        "problem", "GET", "/problems/{code}", "what a problem code means", (JSON, HTML),
+        "problem",
+        "GET",
+        "/problems/{code}",
+        "what a problem code means",
+        (JSON, HTML),
         parameters=("code",),
     ),
     Operation("health", "GET", "/healthz", "whether the process is alive"),
@@ -139,7 +143,7 @@ def openapi_document() -> Json:
             return {}
         return field.published(self.field2property)
 
-    converter.add_attribute_function(publish)
+    converter.add_attribute_function(publish)  # type: ignore[no-untyped-call]
     for name, component in quantity_components().items():
         spec.components.schema(name, component)
     spec.components.schema("Uncertain", schema=UncertainSchema)
@@ -226,9 +230,11 @@ def render(document: Json) -> bytes:
     return (json.dumps(document, indent=1, ensure_ascii=False) + "\n").encode()
 
 
+PUBLISHED = files("schemas").joinpath("published/openapi.json")
+"""Where the document is packaged."""
+
+
 @cache
 def published_text() -> bytes:
     """Return the packaged OpenAPI document."""
-    return files("schemas").joinpath("published/openapi.json").read_bytes()
-
-
+    return PUBLISHED.read_bytes()

@@ -2,15 +2,27 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
 from marshmallow import fields
+from scipy.special import ndtri
 
-from core.errors import Subject
+from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
+from core.errors import Note, Subject
+from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
 from core.outlet_analysis.account import AccountProblem
+from core.outlet_analysis.conversion import ConversionResults, YieldBasis
+from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.ratios import Uncertain
 from core.reactions.reaction_set import ReactionSet
+from core.streams.known import Conditions, in_phase
+from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
-from schemas.feed import StreamResultSchema, is_batch
+from schemas.feed import StreamResultSchema, is_batch, read_conditions, words_of, write_stream
 from schemas.fields import Choice, Map, Number, Text, describe
 from schemas.requests import AccountSchema, read_key, read_reactions
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
@@ -64,29 +76,34 @@ class ConversionRequest(AccountSchema):
 _REQUEST = ConversionRequest()
 
 
-class ReadConversion:
-    """What a conversion request asks for, read.
+@dataclass(frozen=True)
+class ConversionQuestion:
+    """What a conversion request asks for.
 
     Attributes
     ----------
     problem : AccountProblem
-    basis : str
-        Of the yields, ``key`` or ``element``.
+    basis : YieldBasis
+        Of yields and selectivities.
     element : str or None
-    per_key : dict
-        By substance index, -.
+        Of the element basis, where named.
+    per_key : Mapping[int, float]
+        Key consumed per product made, by substance, where stated.
+    conditions : Mapping[str, Conditions or None]
+        What is stated of the sum of the streams, ``feed`` and ``outlet``.
+    readings : StreamReader
+        Knows which readings have a default uncertainty.
     """
 
-    def __init__(self, problem: AccountProblem, yields: Json, reactions: ReactionSet) -> None:
-        self.problem = problem
-        self.basis: str = yields.get("basis", "key")
-        self.element: str | None = yields.get("element")
-        self.per_key = {
-            reactions.index(name): factor for name, factor in yields.get("per_key", {}).items()
-        }
+    problem: AccountProblem
+    basis: YieldBasis
+    element: str | None
+    per_key: Mapping[int, float]
+    conditions: Mapping[str, Conditions | None]
+    readings: StreamReader
 
 
-def read(document: Any) -> tuple[ReadConversion, EdgeMap]:
+def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     """Return what a request asks for, and its edge map.
 
     Raises
@@ -107,20 +124,22 @@ def read(document: Any) -> tuple[ReadConversion, EdgeMap]:
 
 def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
-) -> ReadConversion | None:
+) -> ConversionQuestion | None:
     kept = len(reader.faults)
     key = read_key(request, reader, reactions)
     batch = is_batch(request["feed"]) or is_batch(request["outlet"])
     readings = StreamReader(reader, reactions, batch)
-    sides = {}
+    sides, conditions = {}, {}
     for side in ("feed", "outlet"):
         subject: Subject = (side,)
         sides[side] = readings.metered(request[side], f"/{side}", subject, required=False)
+        conditions[side] = read_conditions(
+            readings, request[side], f"/{side}", subject, sides[side]
+        )
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
     if len(reader.faults) > kept:
         return None
-    reader.assumed.extend(readings.default_notes())
     problem = AccountProblem(
         reactions=reactions,
         key=key,
@@ -129,7 +148,9 @@ def _read_problem(
         batch=batch,
         coverage=request.get("uncertainty", {"coverage": 0.95})["coverage"],
     )
-    return ReadConversion(problem, yields, reactions)
+    per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
+    basis: YieldBasis = yields.get("basis", "key")
+    return ConversionQuestion(problem, basis, yields.get("element"), per_key, conditions, readings)
 
 
 def _check_yields(yields: Json, reader: RequestReader, reactions: ReactionSet) -> None:
@@ -143,7 +164,9 @@ def _check_yields(yields: Json, reader: RequestReader, reactions: ReactionSet) -
             )
     if yields.get("basis", "key") == "key" and "element" in yields:
         reader.fault(
-            "field-not-used", "/yields/element", "yields on key basis count no element; leave it out"
+            "field-not-used",
+            "/yields/element",
+            "yields on key basis count no element; leave it out",
         )
     if yields.get("basis") == "element" and "per_key" in yields:
         reader.fault(
@@ -158,9 +181,7 @@ class RatioSchema(NumberSchema):
 
     basis = fields.String(required=True, metadata=describe("", enum=["key", "element"]))
     element = fields.String(metadata=describe("On element basis."))
-    factor = fields.Float(
-        required=True, metadata=describe("Key equivalents per mole of product.")
-    )
+    factor = fields.Float(required=True, metadata=describe("Key equivalents per mole of product."))
 
 
 class ClosureSchema(OpenSchema):
@@ -173,7 +194,7 @@ class ClosureSchema(OpenSchema):
     ratio = number("Out over in.", required=True)
 
 
-class ReadingSchema(OpenSchema):
+class ReconciledReadingSchema(OpenSchema):
     """A reading beside what the account makes of it."""
 
     reading = fields.String(required=True, metadata=describe("Its JSON Pointer in the request."))
@@ -200,7 +221,7 @@ class ReconciliationSchema(OpenSchema):
     limit = number("Exceeded once in twenty by good readings; null without redundancy.")
     p_value = number("Null without redundancy.")
     consistent = fields.Boolean(required=True, allow_none=True)
-    readings = fields.List(fields.Nested(ReadingSchema), required=True)
+    readings = fields.List(fields.Nested(ReconciledReadingSchema), required=True)
     suspects = fields.List(
         fields.List(fields.String()),
         required=True,
@@ -208,11 +229,20 @@ class ReconciliationSchema(OpenSchema):
     )
 
 
-class WithoutSuspectSchema(OpenSchema):
-    """The answer with suspect readings left out."""
+class AlternativeSchema(OpenSchema):
+    """The answer with some readings left out."""
 
     removed = fields.List(fields.String(), required=True)
     conversion = number(required=True)
+
+
+class WithoutSuspectSchema(AlternativeSchema):
+    """The answer with the suspect readings left out."""
+
+    alternatives = fields.List(
+        fields.Nested(AlternativeSchema),
+        metadata=describe("The other ways to choose among readings that cannot be told apart."),
+    )
 
 
 class ConversionResult(OpenSchema):
@@ -228,7 +258,246 @@ class ConversionResult(OpenSchema):
     selectivities = numbers_by_name(RatioSchema, "By product, per key converted.")
     closure = numbers_by_name(ClosureSchema, "By element.")
     reconciliation = fields.Nested(ReconciliationSchema, required=True)
-    without_suspect = fields.List(fields.Nested(WithoutSuspectSchema))
+    without_suspect = fields.Nested(WithoutSuspectSchema)
 
 
 ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
+
+
+METHOD = (
+    "weighted least squares on the mole account in extents of reaction; linear propagation of"
+    " uncertainty (GUM, JCGM 100:2008)"
+)
+
+
+def write(
+    question: ConversionQuestion, found: Estimate, results: ConversionResults, edge: EdgeMap
+) -> Answer:
+    """Return the answer that holds an estimate and what it says of the reactor."""
+    return _Writer(question, found, results, edge).answer()
+
+
+class _Writer:
+    def __init__(
+        self,
+        question: ConversionQuestion,
+        found: Estimate,
+        results: ConversionResults,
+        edge: EdgeMap,
+    ) -> None:
+        self.question, self.found, self.results = question, found, results
+        self.problem = question.problem
+        self.reactions = self.problem.reactions
+        # Limits are told in the units of the request, flows per mole of key where none is known.
+        self.edge = edge.per_mole_of_key() if found.per_mole_of_key else edge
+        self.coverage = self.problem.coverage
+        self.factor = float(ndtri(0.5 + self.coverage / 2))
+        self.flow = words_of(self.problem.batch).flow_dimension
+        self.assumed: list[Note] = []
+
+    def answer(self) -> Answer:
+        found, results = self.found, self.results
+        ids = [reaction.id for reaction in self.reactions.reactions]
+        result: Json = {
+            "conversion": self._number(results.conversion),
+            "extents": self._by(ids, results.extents, self.flow),
+            "inlet": self._stream("feed", found.feed_flows, found.account.feed_map),
+            "outlet": self._stream("outlet", found.outlet_flows, found.account.outlet_map),
+        }
+        for name in ("key_consumed_by", "key_produced_by"):
+            shares: Uncertain | None = getattr(results, name)
+            if shares is not None:
+                there = {i: x for i, x in zip(ids, self._each(shares), strict=True) if x}
+                result[name] = there
+        result["yields"] = self._ratios(results.yields.yields)
+        result["selectivities"] = self._ratios(results.yields.selectivities)
+        if results.closures is not None:
+            result["closure"] = self._closure()
+        result["reconciliation"] = self._reconciliation()
+        if results.without_suspects:
+            result["without_suspect"] = self._without_suspect()
+        notes: list[Note] = []
+        assumed = self.assumed
+        for note in (*self.edge.read_notes, *found.notes, *results.notes):
+            (assumed if note.code == "per-mole-of-key" else notes).append(note)
+        if found.inconsistent:
+            notes.append(INCONSISTENT)
+        defaults = self.question.readings.default_notes(set(found.readings.subjects))
+        return Answer(
+            result=result,
+            notes=self.edge.notes(notes),
+            assumed=self.edge.notes((*self.edge.read_assumed, *defaults, *assumed)),
+            method=METHOD,
+            data=ATOMIC_WEIGHTS,
+        )
+
+    def _number(self, of: Uncertain, dimension: str = "dimensionless") -> Json | None:
+        value, u = float(of.value), float(of.u)
+        if not np.isfinite(value):
+            return None
+        return self.edge.uncertain(value, u, dimension, coverage=self.coverage, factor=self.factor)
+
+    def _each(self, of: Uncertain, dimension: str = "dimensionless") -> list[Json | None]:
+        return [
+            self._number(Uncertain(value, u), dimension)
+            for value, u in zip(of.value, of.u, strict=True)
+        ]
+
+    def _by(self, names: Sequence[str], of: Uncertain | None, dimension: str) -> Json:
+        if of is None:
+            return dict.fromkeys(names)
+        return dict(zip(names, self._each(of, dimension), strict=True))
+
+    def _stream(self, side: str, flows: FloatArray, forms: FloatArray) -> Json:
+        metered = self.problem.feed if side == "feed" else self.problem.outlet
+        conditions = self.question.conditions[side]
+        phase = metered[0].phase if conditions is None else conditions.phase
+        inside = in_phase(self.reactions, phase)
+        temperature = pressure = volume = None
+        z = 1.0
+        if conditions is not None:
+            z = conditions.compressibility
+            temperature = None if conditions.temperature is None else conditions.temperature.value
+            pressure = None if conditions.pressure is None else conditions.pressure.value
+        if phase == "gas" and temperature is not None and pressure is not None:
+            total = float(flows[inside].sum())
+            volume = total * z * GAS_CONSTANT * temperature / pressure
+        elif phase == "liquid":
+            volume = self._liquid_volume(side)
+        return write_stream(
+            self.edge,
+            self.reactions.names,
+            flows,
+            inside,
+            batch=self.problem.batch,
+            volume=volume,
+            temperature=temperature,
+            pressure=pressure,
+            compressibility=z,
+            u=self.found.u_of(forms),
+            total_u=float(self.found.u_of(forms.sum(axis=0)[None])[0]),
+        )
+
+    def _liquid_volume(self, side: str) -> float | None:
+        """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
+        found = self.found
+        fed = len(self.problem.feed)
+        volumes: dict[str, list[float]] = {"feed": [], "outlet": []}
+        for unknown, value in zip(found.account.unknowns, found.z.tolist(), strict=True):
+            if unknown.kind == "volume":
+                volumes["feed" if unknown.stream < fed else "outlet"].append(value)
+        own = volumes[side]
+        if own or side == "feed" or not volumes["feed"]:
+            return sum(own) if own else None
+        # A liquid of constant density leaves with the volume that it came in with.
+        self.assumed.append(CONSTANT_DENSITY)
+        return sum(volumes["feed"])
+
+    def _ratios(self, of: Uncertain) -> Json:
+        said = self.results.yields
+        names = self.reactions.names
+        ratios: Json = {}
+        for i, number_, factor in zip(
+            said.products, self._each(of), said.factors.tolist(), strict=True
+        ):
+            if number_ is not None:
+                number_["basis"] = said.basis
+                if said.element is not None:
+                    number_["element"] = said.element
+                number_["factor"] = factor
+            ratios[names[i]] = number_
+        return ratios
+
+    def _closure(self) -> Json:
+        closures = self.results.closures
+        assert closures is not None
+        into, out = self._each(closures.into, self.flow), self._each(closures.out, self.flow)
+        return {
+            element: {"in": before, "out": after, "ratio": ratio}
+            for element, before, after, ratio in zip(
+                closures.elements, into, out, self._each(closures.ratio), strict=True
+            )
+        }
+
+    def _reconciliation(self) -> Json:
+        found = self.found
+        checked = int(found.degrees_of_freedom) > 0
+        table = found.readings
+        pointers = [self.edge.place(subject).pointer for subject in table.subjects]
+        sets: dict[int, list[str]] = {}
+        for pointer, number_ in zip(pointers, table.suspect_set.tolist(), strict=True):
+            if number_:
+                sets.setdefault(number_, []).append(pointer)
+        return {
+            "degrees_of_freedom": int(found.degrees_of_freedom),
+            "chi_square": self._plain(found.chi_square),
+            "limit": self._plain(found.limit) if checked else None,
+            "p_value": self._plain(found.p_value) if checked else None,
+            "consistent": not found.inconsistent if checked else None,
+            "readings": [self._reading(k) for k in range(len(pointers))],
+            "suspects": [sets[number_] for number_ in sorted(sets)],
+        }
+
+    def _plain(self, value: Any) -> Json | None:
+        plain = float(value)
+        return {"value": plain, "unit": "1"} if np.isfinite(plain) else None
+
+    def _reading(self, k: int) -> Json:
+        table = self.found.readings
+        place = self.edge.place(table.subjects[k])
+        unit = place.unit or "1"
+
+        def told(value: Any, u: Any = None) -> Json | None:
+            if not np.isfinite(value):
+                return None
+            if u is None or not np.isfinite(u):
+                return self.edge.number(float(value) * place.per, "dimensionless", unit)
+            return self.edge.uncertain(
+                float(value) * place.per, float(u) * place.per, "dimensionless", unit=unit
+            )
+
+        detectable = float(table.smallest_detectable_error[k])
+        said: Json = {
+            "reading": place.pointer,
+            "measured": _as_read(told(table.measured[k], table.u[k])),
+            "reconciled": told(table.reconciled[k], table.reconciled_u[k]),
+            "adjustment_over_u": self._plain(table.adjustment_over_u[k]),
+            "redundancy": self._plain(table.redundancy[k]),
+            "smallest_detectable_error": (
+                self.edge.difference(detectable * place.per, unit)
+                if np.isfinite(detectable)
+                else None
+            ),
+            "suspect": bool(table.suspect_set[k]),
+        }
+        if table.within_limit[k] >= 0:
+            said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
+        return said
+
+    def _without_suspect(self) -> Json:
+        subjects = self.found.readings.subjects
+        ways = [
+            {
+                "removed": [self.edge.place(subjects[k]).pointer for k in removed],
+                "conversion": self._number(conversion),
+            }
+            for removed, conversion in self.results.without_suspects
+        ]
+        first, *others = ways
+        return {**first, "alternatives": others} if others else first
+
+
+def _as_read(number_: Json | None) -> Json | None:
+    """Return a reading as it was read, free of the last digit of its way to SI and back."""
+    if number_ is None:
+        return None
+    return {k: float(f"{v:.14g}") if isinstance(v, float) else v for k, v in number_.items()}
+
+
+INCONSISTENT = Note(
+    "readings-inconsistent",
+    "the readings contradict each other beyond their uncertainties; 'suspects' names those in"
+    " doubt, 'without_suspect' the answer without them",
+    "warning",
+    ("outlet",),
+)

@@ -11,7 +11,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from typing import Any
 
@@ -54,10 +54,15 @@ class Measured:
 
 @dataclass(frozen=True, slots=True)
 class Place:
-    """Where a subject stands in the request, and the unit it was given in."""
+    """Where a subject stands in the request, and the unit it was given in.
+
+    ``per`` is what a core value is to be multiplied by to be the SI value of the
+    unit: 1, unless the core counts otherwise (mg/Nm3 as a mole fraction).
+    """
 
     pointer: str
     unit: str | None = None
+    per: float = 1.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,6 +83,8 @@ class EdgeMap:
     read_notes: tuple[Note, ...] = ()
     read_assumed: tuple[Note, ...] = ()
     """What reading the request found worth telling with the answer."""
+    atmospheric_pressure: float = STANDARD_ATMOSPHERE
+    """Pa, of gauge units."""
 
     def place(self, subject: Subject) -> Place:
         """Return the place of the subject, or of the nearest thing that holds it."""
@@ -87,10 +94,20 @@ class EdgeMap:
                 return found
         return Place("")
 
+    def per_mole_of_key(self) -> EdgeMap:
+        """Return the map of an account that is kept per mole of key fed: flows are numbers."""
+        plain = Scale("1", 1.0, 0.0)
+        return replace(self, scales={**self.scales, "molar_flow": plain, "amount": plain})
+
     def number(self, value: float, dimension: str, unit: str | None = None) -> Json:
         """Return the Number of an SI value, in ``unit`` or the dimension's own."""
-        scale = self.scales[dimension] if unit is None else scale_of(unit)
+        scale = self._scale(dimension, unit)
         return {"value": (value - scale.offset) / scale.factor, "unit": scale.unit}
+
+    def _scale(self, dimension: str, unit: str | None) -> Scale:
+        if unit is None:
+            return self.scales[dimension]
+        return scale_of(unit, self.atmospheric_pressure)
 
     def uncertain(
         self,
@@ -107,7 +124,7 @@ class EdgeMap:
         With ``coverage`` also the interval, ``factor`` standard uncertainties wide
         on each side.
         """
-        scale = self.scales[dimension] if unit is None else scale_of(unit)
+        scale = self._scale(dimension, unit)
         number = {
             "value": (value - scale.offset) / scale.factor,
             "unit": scale.unit,
@@ -118,6 +135,11 @@ class EdgeMap:
             number["interval"] = [(end - scale.offset) / scale.factor for end in ends]
             number["coverage"] = coverage
         return number
+
+    def difference(self, value: float, unit: str) -> Json:
+        """Return the Number of an SI difference, in the difference unit that goes with ``unit``."""
+        name = difference_unit(unit)
+        return {"value": value / find_unit(name).factor, "unit": name}
 
     def say(self, fact: Fact) -> str:
         """Return a fact in words, amounts in the units of the request."""
@@ -139,8 +161,9 @@ class EdgeMap:
         told = []
         for note in notes:
             entry = {"code": note.code, "detail": self._sentence(note), "severity": note.severity}
-            if note.subject:
-                entry["pointer"] = self.place(note.subject).pointer
+            pointer = self.place(note.subject).pointer
+            if pointer:
+                entry["pointer"] = pointer
             told.append(entry)
         return told
 
@@ -340,7 +363,8 @@ class RequestReader:
 
     def collect(self, refused: Refused) -> None:
         """Keep the faults of a refusal that arose while reading."""
-        self.faults.extend(EdgeMap(self.places, self.scales({})).locate(refused).faults)
+        edge = EdgeMap(self.places, self.scales({}), atmospheric_pressure=self.atmospheric_pressure)
+        self.faults.extend(edge.locate(refused).faults)
 
     def scales(self, report_in: Mapping[str, str]) -> dict[str, Scale]:
         """Return how each dimension is printed: as asked, as first used, by default."""
@@ -373,7 +397,13 @@ class RequestReader:
                 )
         if self.faults:
             raise MeaningError(tuple(self.faults))
-        return EdgeMap(self.places, self.scales(wanted), tuple(self.notes), tuple(self.assumed))
+        return EdgeMap(
+            self.places,
+            self.scales(wanted),
+            tuple(self.notes),
+            tuple(self.assumed),
+            self.atmospheric_pressure,
+        )
 
 
 def words(dimension: str) -> str:

@@ -10,6 +10,7 @@ import json
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
+from importlib.resources.abc import Traversable
 from typing import Any
 
 PLACE = files("schemas").joinpath("published/examples")
@@ -24,9 +25,14 @@ class Example:
     title: str
     request: Any
 
+    @property
+    def answer_file(self) -> Traversable:
+        """Where the answer is packaged."""
+        return PLACE.joinpath(f"{self.name}.answer.json")
+
     def answer(self) -> Any:
         """Return the packaged answer."""
-        return json.loads(PLACE.joinpath(f"{self.name}.answer.json").read_bytes())
+        return json.loads(self.answer_file.read_bytes())
 
 
 @cache

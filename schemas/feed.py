@@ -10,9 +10,10 @@ from marshmallow import fields
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Note, Refused, Subject
-from core.outlet_analysis.feed import known_feed
+from core.outlet_analysis.feed import KnownFeed, known_feed
 from core.reactions.reaction_set import ReactionSet
 from core.streams.known import Conditions
+from core.streams.metered import MeteredStream
 from core.streams.stream import Stream
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.results import NumberSchema, OpenSchema, number, numbers_by_name
@@ -46,8 +47,8 @@ def is_batch(document: Json) -> bool:
 
 
 def read_feed(
-    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet
-) -> Stream | None:
+    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, key: int
+) -> KnownFeed | None:
     """Return the feed as one stream of known flows; None after a fault.
 
     A feed given by an analysis is the account that fits its readings best.
@@ -58,18 +59,18 @@ def read_feed(
     kept = len(reader.faults)
     readings = StreamReader(reader, reactions, batch)
     streams = readings.metered(document, pointer, subject, required=True)
-    conditions = read_conditions(readings, document, pointer, subject)
-    if len(reader.faults) > kept or conditions is None:
+    conditions = read_conditions(readings, document, pointer, subject, streams)
+    if len(reader.faults) > kept or conditions is None or key < 0:
         return None
     try:
-        known = known_feed(reactions, streams, conditions, batch=batch)
+        known = known_feed(reactions, key, streams, conditions, batch=batch)
     except Refused as refused:
         reader.collect(refused)
         return None
     reader.assumed.extend(known.assumed)
     reader.notes.extend(known.notes)
     if known.estimated:
-        reader.assumed.extend(readings.default_notes())
+        reader.assumed.extend(readings.default_notes(known.weighed))
     elif _has_uncertainty(document):
         reader.notes.append(
             Note(
@@ -79,23 +80,32 @@ def read_feed(
                 subject=subject,
             )
         )
-    return known.stream
+    return known
 
 
 def read_conditions(
-    readings: StreamReader, document: Json, pointer: str, subject: Subject
+    readings: StreamReader,
+    document: Json,
+    pointer: str,
+    subject: Subject,
+    streams: Sequence[MeteredStream],
 ) -> Conditions | None:
     """Return what is stated of the sum of the streams; None where no phase is."""
+    if "streams" not in document:
+        if not streams:
+            return None
+        (stream,) = streams
+        return Conditions(
+            stream.phase, subject, stream.temperature, stream.pressure, stream.compressibility
+        )
     phase = document.get("phase")
     if phase is None:
-        if "streams" in document:
-            readings.reader.fault(
-                "field-needed",
-                child(pointer, "phase"),
-                "the phase of the streams together is needed; allowed: gas, liquid",
-            )
+        readings.reader.fault(
+            "field-needed",
+            child(pointer, "phase"),
+            "the phase of the streams together is needed; allowed: gas, liquid",
+        )
         return None
-    several = "streams" in document
     volume = "volume" if readings.batch else "volumetric_flow"
     return Conditions(
         phase=phase,
@@ -103,8 +113,8 @@ def read_conditions(
         temperature=readings.condition(document, "temperature", pointer, subject),
         pressure=readings.condition(document, "pressure", pointer, subject),
         compressibility=document["compressibility"],
-        volumetric_flow=readings.volume(document, pointer, subject, volume) if several else None,
-        density=readings.density(document, pointer, subject, phase) if several else None,
+        volumetric_flow=readings.volume(document, pointer, subject, volume),
+        density=readings.density(document, pointer, subject, phase),
     )
 
 
@@ -151,6 +161,8 @@ def write_stream(
     temperature: float | None,
     pressure: float | None,
     compressibility: float = 1.0,
+    u: FloatArray | None = None,
+    total_u: float | None = None,
 ) -> Json:
     """Return a stream as it stands in an answer.
 
@@ -167,6 +179,10 @@ def write_stream(
     temperature, pressure : float or None
         K, Pa.
     compressibility : float
+    u : ndarray, shape (S,), or None
+        Standard uncertainties of the flows.
+    total_u : float or None
+        And of their sum.
     """
     words = words_of(batch)
     scale = edge.scales[words.flow_dimension]
@@ -187,6 +203,9 @@ def write_stream(
                 else {"value": flow / per_volume, "unit": concentration.unit}
             )
         species[name] = said
+    if u is not None:
+        for said, spread in zip(species.values(), u.tolist(), strict=True):
+            said[words.flow]["u"] = spread / factor
     stream: Json = {}
     if temperature is not None:
         stream["temperature"] = edge.number(temperature, "temperature")
@@ -194,8 +213,14 @@ def write_stream(
         stream["pressure"] = edge.number(pressure, "pressure")
     if compressibility != 1.0:
         stream["compressibility"] = edge.number(compressibility, "dimensionless")
-    stream[words.volume] = None if volume is None else edge.number(volume, words.volume_dimension)
+    if unit != "1":
+        # Per mole of key there is no volumetric flow, though there are concentrations.
+        stream[words.volume] = (
+            None if volume is None else edge.number(volume, words.volume_dimension)
+        )
     stream["total"] = {"value": total / factor, "unit": unit}
+    if total_u is not None:
+        stream["total"]["u"] = total_u / factor
     if phase_total != total:
         stream["phase_total"] = {"value": phase_total / factor, "unit": unit}
     stream["species"] = species

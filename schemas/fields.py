@@ -238,9 +238,11 @@ def _bad_name(name: str) -> Message:
 def _each(items: Mapping[Any, Any], field: fields.Field[Any], data: Any) -> dict[Any, Any]:
     done: dict[Any, Any] = {}
     faults: dict[Any, Any] = {}
+    # A strict field judges null itself; the stock ones need the longer way.
+    read = field._deserialize if isinstance(field, StrictField) else field.deserialize
     for name, item in items.items():
         try:
-            done[name] = field.deserialize(item, name, data)
+            done[name] = read(item, name, data)
         except ValidationError as error:
             faults[name] = error.messages
     if faults:

@@ -10,6 +10,7 @@ from __future__ import annotations
 import difflib
 from collections.abc import Iterator
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any, ClassVar
 
 from marshmallow import RAISE, Schema, ValidationError
@@ -65,7 +66,8 @@ def token(name: object) -> str:
     return str(name).replace("~", "~0").replace("/", "~1")
 
 
-def child(pointer: str, *names: object) -> str:
+@lru_cache(maxsize=8192)
+def child(pointer: str, *names: str | int) -> str:
     """Return the pointer of what stands under ``pointer`` by these names."""
     return pointer + "".join(f"/{token(name)}" for name in names)
 

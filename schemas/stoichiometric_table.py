@@ -75,26 +75,28 @@ def read(document: Any) -> tuple[TableProblem, EdgeMap]:
     request = load(_REQUEST, document)
     reader = RequestReader.of(request)
     reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
-    problem = None
+    problem, per_key = None, False
     if reactions is not None:
-        problem = _read_problem(request, reader, reactions)
+        problem, per_key = _read_problem(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert problem is not None
-    return problem, edge
+    return problem, edge.per_mole_of_key() if per_key else edge
 
 
 def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
-) -> TableProblem | None:
+) -> tuple[TableProblem | None, bool]:
+    """Return the problem, and whether it is kept per mole of key fed."""
     key = read_key(request, reader, reactions)
-    inlet = read_feed(request["feed"], "/feed", reader, reactions)
+    feed = read_feed(request["feed"], "/feed", reader, reactions, key)
+    inlet = None if feed is None else feed.stream
     outlet = _read_outlet(request.get("outlet", {}), reader)
     asked = _read_asked(request, reader, reactions, inlet)
     if "hold" in request and (inlet is None or not inlet.batch):
         reader.fault("field-not-used", "/hold", "a flow holds nothing; state 'amounts', a batch")
-    if inlet is None:
-        return None
-    return TableProblem(
+    if feed is None or inlet is None:
+        return None, False
+    problem = TableProblem(
         reactions=reactions,
         key=key,
         inlet=inlet,
@@ -102,6 +104,7 @@ def _read_problem(
         hold=request.get("hold", "volume"),
         **asked,
     )
+    return problem, feed.per_mole_of_key
 
 
 def _read_outlet(document: Json, reader: RequestReader) -> OutletConditions:

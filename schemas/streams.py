@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Mapping
+import math
+from collections.abc import Collection, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
@@ -125,14 +126,15 @@ FORMS = (
 class StreamReader:
     """Reads streams of a request into metered streams of the core.
 
-    ``defaults`` keeps where a default uncertainty stands in for a stated one,
-    by kind of reading: an answer that used them lists them.
+    ``defaults`` keeps which readings have a default uncertainty in place of a
+    stated one, by kind of reading: an answer that used them lists them.
     """
 
     reader: RequestReader
     reactions: ReactionSet
     batch: bool = False
-    defaults: dict[str, list[str]] = field(default_factory=dict)
+    defaults: dict[str, list[Subject]] = field(default_factory=dict)
+    instruments: dict[str, list[Subject]] = field(default_factory=dict)
 
     def metered(
         self, document: Json, pointer: str, subject: Subject, *, required: bool
@@ -257,18 +259,37 @@ class StreamReader:
             self.reader.at(about, place)
             return None
         found = self.reader.quantity(document[name], place, about, name, above=0)
-        return self._measurement(found, about, name, place)
+        return self._measurement(found, about, name)
 
     def _measurement(
-        self, found: Measured | None, subject: Subject, kind: str, pointer: str
+        self, found: Measured | None, subject: Subject, kind: str
     ) -> Measurement | None:
         if found is None:
             return None
         u = found.u
+        if found.u_shared is not None:
+            # Of one sample the two parts cannot be told apart; together they are its uncertainty.
+            u = math.hypot(u or 0.0, found.u_shared)
+            if found.instrument is not None and found.u_shared > 0:
+                self._shared_by(found.instrument, subject)
         if u is None and found.bound is None:
             u = DEFAULT_UNCERTAINTIES[kind].of(found.value)
-            self.defaults.setdefault(kind, []).append(pointer)
+            self.defaults.setdefault(kind, []).append(subject)
         return Measurement(found.value, u or 0.0, subject, found.bound)
+
+    def _shared_by(self, instrument: str, subject: Subject) -> None:
+        others = self.instruments.setdefault(instrument, [])
+        others.append(subject)
+        if len(others) == 2:
+            self.reader.notes.append(
+                Note(
+                    "instrument-taken-as-independent",
+                    f"readings of the instrument {instrument} share an error; this release takes"
+                    " their errors as independent of each other",
+                    "warning",
+                    subject,
+                )
+            )
 
     def _present(self, document: Json, analysis: Analysis | None) -> frozenset[int]:
         names = set(document.get("flows", ())) | set(document.get("amounts", ()))
@@ -299,7 +320,7 @@ class StreamReader:
                 if found is None or index is None:
                     continue
                 kind: FlowKind = "amount" if found.dimension == total else "mass"
-                reading = self._measurement(found, about, "flow", place)
+                reading = self._measurement(found, about, "flow")
                 assert reading is not None
                 yield FlowReading(kind, reading, index)
         if "flow" in document and form == "analysis":
@@ -316,7 +337,7 @@ class StreamReader:
             return None
         place, about = child(pointer, name), (*subject, name)
         found = self.reader.quantity(document[name], place, about, name, above=0)
-        return self._measurement(found, about, "flow", place)
+        return self._measurement(found, about, "flow")
 
     def _total(
         self,
@@ -328,7 +349,7 @@ class StreamReader:
     ) -> Iterator[FlowReading]:
         place, about = child(pointer, "flow"), (*subject, "flow")
         found = self.reader.quantity(document["flow"], place, about, *dimensions, above=0)
-        reading = self._measurement(found, about, "flow", place)
+        reading = self._measurement(found, about, "flow")
         if found is None or reading is None:
             return
         as_analysed = document["flow_basis"] == "as-analysed"
@@ -386,7 +407,7 @@ class StreamReader:
         found = self.reader.quantity(
             document["density"], place, about, "mass_concentration", above=0
         )
-        return self._measurement(found, about, "density", place)
+        return self._measurement(found, about, "density")
 
     def _concentrations(
         self, document: Json, pointer: str, subject: Subject, phase: StreamPhase
@@ -471,6 +492,8 @@ class StreamReader:
                     )
                     continue
                 molar_mass = float(self.reactions.molar_masses[next(iter(weights))])
+                stated = self.reader.places[about]
+                self.reader.places[about] = replace(stated, per=molar_mass)
                 found = replace(
                     found,
                     value=found.value / molar_mass,
@@ -478,7 +501,7 @@ class StreamReader:
                 )
             wet = phase == "liquid" or basis == "concentration"
             kind = "wet-chemistry" if wet else "gas-analysis"
-            reading = self._measurement(found, about, kind, place)
+            reading = self._measurement(found, about, kind)
             assert reading is not None
             components.append(Component(weights, reading))
         core_basis: Basis = {
@@ -490,7 +513,9 @@ class StreamReader:
 
     def _weights(self, name: str, lumps: Mapping[str, Mapping[str, float]]) -> dict[int, float]:
         if name in lumps:
-            members = ((self.reactions.find(member), weight) for member, weight in lumps[name].items())
+            members = (
+                (self.reactions.find(member), weight) for member, weight in lumps[name].items()
+            )
             return {i: weight for i, weight in members if i is not None}
         index = self.reactions.find(name)
         return {} if index is None else {index: 1.0}
@@ -595,16 +620,20 @@ class StreamReader:
         self.reader.assumed.append(saturation.note)
         return saturation.value / pressure.value
 
-    def default_notes(self) -> list[Note]:
-        """Return the assumptions that the default uncertainties are."""
-        return [
-            Note(
-                "default-uncertainty",
-                f"{DEFAULT_UNCERTAINTIES[kind].words} (common practice), where none is stated:"
-                f" {_listed(pointers)}",
-            )
-            for kind, pointers in self.defaults.items()
-        ]
+    def default_notes(self, used: Collection[Subject]) -> list[Note]:
+        """Return the assumptions that the default uncertainties of the readings used are."""
+        notes = []
+        for kind, subjects in self.defaults.items():
+            pointers = [self.reader.places[s].pointer for s in subjects if s in used]
+            if pointers:
+                notes.append(
+                    Note(
+                        "default-uncertainty",
+                        f"{DEFAULT_UNCERTAINTIES[kind].words} (common practice), where none is"
+                        f" stated: {_listed(pointers)}",
+                    )
+                )
+        return notes
 
 
 STREAM_CONTENT = (

@@ -131,7 +131,7 @@ def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> SizingProblem | None:
     key = read_key(request, reader, reactions)
-    feed = read_feed(request["feed"], "/feed", reader, reactions)
+    known = read_feed(request["feed"], "/feed", reader, reactions, key)
     said = request["reactions"][0]
     if len(reactions.reactions) > 1:
         reader.fault(
@@ -148,8 +148,16 @@ def _read_problem(
             " 'equation' and 'rate'",
         )
         return None
-    if feed is None or key < 0:
+    if known is None:
         return None
+    if known.per_mole_of_key:
+        reader.fault(
+            "field-needed",
+            "/feed/flow",
+            "a size follows from how much flows, which nothing in the feed says; state its flow",
+        )
+        return None
+    feed = known.stream
     kind = request["reactor"]["kind"]
     reader.at(("reactor",), "/reactor")
     rate = read_rate(said, "/reactions/0", reader, reactions, feed)

@@ -7,6 +7,7 @@ one BLAS thread in each.
 from __future__ import annotations
 
 import contextlib
+import gc
 import math
 import os
 import socket
@@ -117,11 +118,28 @@ class Application(BaseApplication):  # type: ignore[misc]
         # A body is read while a route runs; broken framing is the client's fault there too.
         app.register_error_handler(errors.ParseException, _refuse_body)
         app.register_error_handler(ClientDisconnected, _refuse_body)
+        _warm_up(app)
         return app
 
     def _ready(self, arbiter: Any) -> None:
         host, port = arbiter.LISTENERS[0].getsockname()[:2]
         self._listening(f"http://[{host}]:{port}" if ":" in host else f"http://{host}:{port}")
+
+
+def _warm_up(app: flask.Flask) -> None:
+    """Compute every packaged example once, before the workers part.
+
+    What is imported or made on first use is then there, and shared: no request
+    waits for it, and a release that cannot compute does not start.
+    """
+    from schemas.examples import EXAMPLES
+
+    for example in EXAMPLES:
+        path = f"/v1/{example.operation}"
+        with app.test_request_context(path, method="POST", json=example.request):
+            app.dispatch_request()
+    gc.collect()
+    gc.freeze()  # the collector's marks would have each worker copy these pages
 
 
 class _Logger(glogging.Logger):  # type: ignore[misc]

@@ -22,14 +22,21 @@ def flow_expression(
 
 
 def concentration_expression(
-    key: str, theta: float, ratio: float, *, is_key: bool, epsilon: float, conditions: str
+    name: str,
+    key: str,
+    theta: float,
+    ratio: float,
+    *,
+    is_key: bool,
+    epsilon: float,
+    conditions: str,
 ) -> str:
     """Return the concentration of a substance as a function of the key's conversion.
 
     ``epsilon`` 0 leaves the volume's own factor out; ``conditions`` is the text
     of the factors for temperature, pressure and compressibility, if any change.
     """
-    text = f"C_{key}0 {_bracket(theta, ratio, is_key)}"
+    text = f"C_{key}0 {_bracket(theta, ratio, is_key)}" if ratio else f"C_{name}0"
     if epsilon:
         text += f"/(1 {_signed(epsilon)} X)"
     return f"{text} {conditions}".rstrip()

@@ -56,12 +56,14 @@ def extent_limits(nu: FloatArray, flows: FloatArray) -> tuple[float, int, float,
     product : int
         The product that sets it.
     """
-    with np.errstate(divide="ignore", invalid="ignore"):
-        reach = flows / -nu
-    consumed = np.where(nu < 0, reach, np.inf)
-    made = np.where(nu > 0, reach, -np.inf)
-    reactant, product = int(consumed.argmin()), int(made.argmax())
-    return float(consumed[reactant]), reactant, float(min(made[product], 0.0)), product
+    forward, reactant, backward, product = np.inf, -1, -np.inf, -1
+    # Few substances, asked for with every table: plain numbers are faster than arrays here.
+    for i, (coefficient, flow) in enumerate(zip(nu.tolist(), flows.tolist(), strict=True)):
+        if coefficient < 0 and flow / -coefficient < forward:
+            forward, reactant = flow / -coefficient, i
+        elif coefficient > 0 and -flow / coefficient > backward:
+            backward, product = -flow / coefficient, i
+    return forward, reactant, min(backward, 0.0), product
 
 
 def conversion_range(reactions: ReactionSet, key: int, flows: FloatArray) -> ConversionRange:
@@ -93,17 +95,15 @@ def conversion_range(reactions: ReactionSet, key: int, flows: FloatArray) -> Con
 def _one_reaction(reactions: ReactionSet, key: int, flows: FloatArray) -> ConversionRange:
     nu = reactions.nu[0]
     forward, reactant, backward, product = extent_limits(nu, flows)
-    scale = -nu[key] / flows[key]
-    reversible = reactions.reactions[0].reversible
+    per_extent = float(-nu[key] / flows[key])
+    largest = forward * per_extent
     # Of several substances that run out together the key is the one to name.
-    if nu[key] < 0 and flows[key] <= -nu[key] * forward * (1 + 1e-12):
-        reactant, forward = key, float(flows[key] / -nu[key])
-    return ConversionRange(
-        largest=float(forward * scale),
-        smallest=float(backward * scale) if reversible else 0.0,
-        limiting=reactant,
-        exhausted_backwards=product if reversible else None,
-    )
+    if nu[key] < 0 and largest >= 1 - 1e-12:
+        reactant, largest = key, 1.0
+    if not reactions.reactions[0].reversible:
+        return ConversionRange(largest, 0.0, reactant, None)
+    smallest = backward * per_extent if backward else 0.0
+    return ConversionRange(largest, smallest, reactant, product)
 
 
 def _several_reactions(reactions: ReactionSet, key: int, flows: FloatArray) -> ConversionRange:

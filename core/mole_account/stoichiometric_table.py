@@ -10,7 +10,7 @@ follow from the one linear account F = F_0 + xi nu that is kept here.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 from typing import Literal
 
 import numpy as np
@@ -200,7 +200,7 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
         delta=delta,
         epsilon=epsilon,
         key_mole_fraction=share if in_phase[key] else None,
-        roles=_roles(problem),
+        roles=_roles(reactions, key),
         states=states,
         fails_because=fails,
         notes=tuple(notes),
@@ -442,12 +442,13 @@ def _changes(inlet: Stream, outlet: OutletConditions) -> list[str]:
     return changed
 
 
-def _roles(problem: TableProblem) -> tuple[Role, ...]:
-    nu = problem.reactions.nu
+@lru_cache(maxsize=256)
+def _roles(reactions: ReactionSet, key: int) -> tuple[Role, ...]:
+    nu = reactions.nu
     consumed, made = nu.min(axis=0) < 0, nu.max(axis=0) > 0
     roles: list[Role] = []
     for i in range(nu.shape[1]):
-        if i == problem.key:
+        if i == key:
             roles.append("key")
         elif consumed[i]:
             roles.append("reactant")
@@ -503,17 +504,15 @@ def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
         flow = flow_expression(name, names[key], theta, ratio, batch=batch, is_key=is_key)
         concentration = None
         if inlet.in_phase[i] and inlet.in_phase[key] and states.concentrations is not None:
-            if ratio == 0 and not epsilon and not conditions:
-                concentration = f"C_{name}0"
-            else:
-                concentration = concentration_expression(
-                    names[key],
-                    theta,
-                    ratio,
-                    is_key=is_key,
-                    epsilon=epsilon,
-                    conditions=conditions,
-                )
+            concentration = concentration_expression(
+                name,
+                names[key],
+                theta,
+                ratio,
+                is_key=is_key,
+                epsilon=epsilon,
+                conditions=conditions,
+            )
         told.append((flow, concentration))
     return told
 

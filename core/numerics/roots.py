@@ -54,11 +54,12 @@ def find_root(
         not finite somewhere in the bracket.
     """
     case: NDArray[np.intp] = np.arange(len(lower))
-    root = np.array(lower, dtype=float)
-    x1, x2 = root.copy(), np.array(upper, dtype=float)
-    f1, f2 = np.array(f(x1, case)), np.array(f(x2, case))
-    if not (np.isfinite(f1).all() and np.isfinite(f2).all()):
-        raise _not_converged(subject, lower, upper, ~(np.isfinite(f1) & np.isfinite(f2)))
+    x1, x2 = np.asarray(lower, dtype=float), np.asarray(upper, dtype=float)
+    root = x1.copy()
+    f1, f2 = f(x1, case), f(x2, case)
+    finite = np.isfinite(f1) & np.isfinite(f2)
+    if not finite.all():
+        raise _not_converged(subject, lower, upper, ~finite)
     same = np.sign(f1) * np.sign(f2) > 0
     if same.any():
         raise refuse(
@@ -72,12 +73,11 @@ def find_root(
     x3, f3 = x2, f2
     share = np.full(len(root), 0.5)
     for _ in range(_MOST_STEPS):
-        best = np.where(np.abs(f1) < np.abs(f2), x1, x2)
         width = np.abs(x2 - x1)
-        tolerance = 2.0 * _EPS * np.abs(best) + _TINY
+        tolerance = 2.0 * _EPS * np.abs(x1) + _TINY
         done = (width <= 2.0 * tolerance) | (f1 == 0) | (f2 == 0)
         if done.any():
-            root[case[done]] = best[done]
+            root[case[done]] = np.where(np.abs(f1) < np.abs(f2), x1, x2)[done]
             if done.all():
                 return root
             on = ~done
@@ -85,7 +85,7 @@ def find_root(
             x1, x2, x3, f1, f2, f3 = x1[on], x2[on], x3[on], f1[on], f2[on], f3[on]
         least = tolerance / width
         x = x1 + np.minimum(np.maximum(share, least), 1.0 - least) * (x2 - x1)
-        y = np.asarray(f(x, case))
+        y = f(x, case)
         if not np.isfinite(y).all():
             raise _not_converged(subject, lower[case], upper[case], ~np.isfinite(y))
         beyond = np.sign(y) == np.sign(f1)

@@ -20,7 +20,7 @@ from typing import Literal
 
 import numpy as np
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
 from core.outlet_analysis.readings import (
     FURTHER,
@@ -98,6 +98,8 @@ class Account:
     readings : Readings
     writer : ReadingWriter
     unknowns : tuple of Unknown, length n
+    of_flow, of_extent : ndarray of bool, shape (n,)
+        Which unknowns are flows, and which extents.
     stream_map : ndarray, shape (T, n)
         From the unknowns to the stream space of the readings.
     feed_map, outlet_map : ndarray, shape (S, n)
@@ -114,6 +116,8 @@ class Account:
     feed_map: FloatArray
     outlet_map: FloatArray
     extent_map: FloatArray
+    of_flow: BoolArray
+    of_extent: BoolArray
 
     @property
     def streams(self) -> tuple[MeteredStream, ...]:
@@ -277,6 +281,8 @@ def _assemble(
         feed_map,
         outlet_map,
         extent_map,
+        np.array([unknown.kind == "flow" for unknown in columns.unknowns], dtype=bool),
+        np.array([unknown.kind == "extent" for unknown in columns.unknowns], dtype=bool),
     )
 
 

@@ -84,7 +84,9 @@ class Estimate:
         Of a single sample with suspects: the account without them, one for
         each choice among readings that cannot be told apart.
     failed : Mapping of int to Fault
-        By sample.
+        By sample, counted from the first of this estimate.
+    first : int
+        Where in the series this estimate begins.
     notes : tuple of Note
     """
 
@@ -101,6 +103,7 @@ class Estimate:
     inflation: FloatArray
     without_suspects: tuple[WithoutSuspects, ...] = ()
     failed: Mapping[int, Fault] = field(default_factory=dict)
+    first: int = 0
     notes: tuple[Note, ...] = ()
 
     @property

@@ -7,7 +7,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.errors import Note
+from core.arrays import FloatArray
+from core.errors import Amount, Note, Subject, refuse
+from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.reconciliation import estimate_feed
 from core.reactions.reaction_set import ReactionSet
 from core.streams.known import Conditions, direct_flows, is_direct, join_streams
 from core.streams.metered import MeteredStream
@@ -18,18 +21,31 @@ from core.streams.stream import Stream
 class KnownFeed:
     """The feed as one stream.
 
-    ``estimated`` says that its flows are those that fit the readings best, so
-    that the uncertainties of the readings had a say.
+    Attributes
+    ----------
+    stream : Stream
+    estimated : bool
+        Its flows are those that fit the readings best, so that the
+        uncertainties of the readings had a say.
+    per_mole_of_key : bool
+        No reading tells how much flows: flows are per mole of key fed.
+    assumed, notes : tuple of Note
+    weighed : frozenset of Subject
+        Readings whose uncertainties had a say in the flows: those that other
+        readings check.
     """
 
     stream: Stream
     estimated: bool
+    per_mole_of_key: bool
     assumed: tuple[Note, ...]
     notes: tuple[Note, ...] = ()
+    weighed: frozenset[Subject] = frozenset()
 
 
 def known_feed(
     reactions: ReactionSet,
+    key: int,
     streams: Sequence[MeteredStream],
     conditions: Conditions,
     *,
@@ -40,12 +56,72 @@ def known_feed(
     Raises
     ------
     Refused
-        As :func:`core.streams.known.join_streams`, and where the readings do
-        not settle the flows, as the estimation.
+        As :func:`core.streams.known.join_streams`; where the flows are
+        estimated as :func:`core.outlet_analysis.reconciliation.estimate`, and
+        ``flow-negative`` where the best estimate of a flow is below zero.
     """
-    estimated = not all(is_direct(stream) for stream in streams)
-    if estimated:
-        raise NotImplementedError
-    flows = np.sum([direct_flows(s, reactions.molar_masses) for s in streams], axis=0)
-    stream, assumed = join_streams(reactions, flows, streams, conditions, batch=batch)
-    return KnownFeed(stream, estimated, assumed)
+    if all(is_direct(stream) for stream in streams):
+        each = [direct_flows(stream, reactions.molar_masses) for stream in streams]
+        stream, assumed = join_streams(
+            reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=batch
+        )
+        return KnownFeed(stream, estimated=False, per_mole_of_key=False, assumed=assumed)
+    found = estimate_feed(reactions, key, tuple(streams), batch)
+    each = _stream_flows(reactions, found, conditions)
+    stream, assumed = join_streams(
+        reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=batch
+    )
+    scaled = bool(found.per_mole_of_key)
+    told = [note for note in found.notes if note.code != "no-redundancy"]
+    if found.inconsistent:
+        told.append(
+            Note(
+                "readings-inconsistent",
+                "the readings of the feed contradict each other: chi-square {found} against a"
+                " limit of {limit}; the flows that fit them best are taken",
+                "warning",
+                conditions.subject,
+                {
+                    "found": Amount(float(found.chi_square)),
+                    "limit": Amount(float(found.limit)),
+                },
+            )
+        )
+    return KnownFeed(
+        stream,
+        estimated=True,
+        per_mole_of_key=scaled,
+        assumed=(*assumed, *(note for note in told if note.code == "per-mole-of-key")),
+        notes=tuple(note for note in told if note.code != "per-mole-of-key"),
+        weighed=frozenset(
+            subject
+            for subject, redundancy in zip(
+                found.readings.subjects, found.readings.redundancy, strict=True
+            )
+            if redundancy > 1e-9
+        ),
+    )
+
+
+def _stream_flows(
+    reactions: ReactionSet, found: Estimate, conditions: Conditions
+) -> list[FloatArray]:
+    """Return the flows of each metered stream, none of them below zero."""
+    count = len(reactions.names)
+    account = found.account
+    each = [
+        np.asarray(account.stream_map[g * count : (g + 1) * count] @ found.z)
+        for g in range(len(account.problem.feed))
+    ]
+    total = np.sum(each, axis=0)
+    worst = int(np.argmin(total))
+    # What rounding leaves of a flow that is nothing is nothing.
+    if total[worst] < -1e-12 * total.max():
+        raise refuse(
+            "flow-negative",
+            conditions.subject,
+            f"the readings leave {{flow}} of {reactions.names[worst]}, less than nothing; look at"
+            " the values that its flow is the rest of",
+            flow=Amount(float(total[worst]), "molar_flow"),
+        )
+    return [np.where(np.abs(flows) <= 1e-12 * total.max(), 0.0, flows) for flows in each]

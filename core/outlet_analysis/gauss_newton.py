@@ -252,17 +252,21 @@ def _shortened(
     multipliers: FloatArray,
 ) -> tuple[FloatArray, Evaluation, BoolArray]:
     """Take the step, halved per sample until the bases are positive and the merit falls."""
-    exact = fit.compliance == 0
-    there = np.isfinite(fit.compliance) & ~exact
-    weight = np.where(there, 1 / np.where(there, fit.compliance, 1.0), 0.0)
-    penalty = np.where(exact, 2 * np.abs(np.nan_to_num(multipliers)), 0.0)
+    hard = len(fit.stiff) > 0
+    if hard:
+        exact = fit.compliance == 0
+        there = np.isfinite(fit.compliance) & ~exact
+        stiffness = np.where(there, 0.5 / np.where(there, fit.compliance, 1.0), 0.0)
+        penalty = np.where(
+            exact, 2 * np.abs(np.where(np.isfinite(multipliers), multipliers, 0.0)), 0.0
+        )
 
     def merit(of: Evaluation) -> FloatArray:
         residual = fit.measured - of.value
         total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
-        if exact.shape[-1]:
-            hard = residual[:, fit.stiff]
-            total = total + (penalty * np.abs(hard) + 0.5 * weight * hard * hard).sum(axis=-1)
+        if hard:
+            gap = residual[:, fit.stiff]
+            total = total + (penalty * np.abs(gap) + stiffness * gap * gap).sum(axis=-1)
         return total
 
     before = merit(found)
@@ -307,21 +311,34 @@ def linear_step(
     return np.where(np.isfinite(z), z, nominal)
 
 
+def _inverse(
+    fit: Fit, slopes: FloatArray, natural: FloatArray
+) -> tuple[_System, FloatArray, FloatArray]:
+    """The system of the last step, its inverse, and the covariance of the unknowns."""
+    weighted = slopes * np.sqrt(fit.weight)[:, :, None]
+    h = weighted.transpose(0, 2, 1) @ weighted
+    system = _system(h, slopes[:, fit.stiff], fit.compliance, natural, 0.0)
+    n = h.shape[-1]
+    identity = np.broadcast_to(np.eye(system.matrix.shape[-1]), system.matrix.shape)
+    inverse = solve_stack(system.matrix, identity)
+    covariance = inverse[:, :n, :n] * system.size[:, :, None] * system.size[:, None, :]
+    return system, inverse, covariance
+
+
+def covariance_at(fit: Fit, z: FloatArray, natural: FloatArray) -> FloatArray:
+    """Covariance of the unknowns at a solution, shape (N, n, n)."""
+    return _inverse(fit, fit.forms.jacobian(fit.forms.at(z)), natural)[2]
+
+
 def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     """Covariance of the unknowns, leverage and redundancy of the readings, at a solution."""
     found = fit.forms.at(z)
     slopes = fit.forms.jacobian(found)
-    weighted = slopes * np.sqrt(fit.weight)[:, :, None]
-    h = weighted.transpose(0, 2, 1) @ weighted
-    a = slopes[:, fit.stiff]
-    system = _system(h, a, fit.compliance, natural, 0.0)
-    n, c = h.shape[-1], a.shape[1]
-    identity = np.broadcast_to(np.eye(n + c), system.matrix.shape)
-    inverse = solve_stack(system.matrix, identity)
+    system, inverse, covariance = _inverse(fit, slopes, natural)
+    n, c = covariance.shape[-1], len(fit.stiff)
     scaled = inverse[:, :n, :n]
     inflation = scaled.diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
     inflation = np.where(np.isnan(inflation), np.inf, inflation)
-    covariance = scaled * system.size[:, :, None] * system.size[:, None, :]
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
     if c:

@@ -103,7 +103,7 @@ def under_determined(
             for j in np.flatnonzero(of_extents)
         ]
         reported += [left, account.extent_map]
-    for forms, where in ((fed, "in"), (left, "out")):
+    for forms, where in ((fed, "fed"), (left, "leaving")):
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
             words.append(f"the flow of {_listed(found)} {where}")
@@ -162,7 +162,7 @@ def _candidates(account: Account, z: FloatArray, natural: FloatArray) -> list[_C
             total = writer.sample_total(g, writer.ones, "amount")
             form = writer.flows(g, writer.sampled(g, np.eye(count)[i]))
             writer.add(g, blank, form, [(total, -1.0)])
-            note(f"the fraction of {names[i]} in the analysis of {where}")
+            note(f"the fraction of {names[i]} in {'the analysis of ' if analysis else ''}{where}")
         writer.flow_reading(g, FlowReading("amount", blank))
         note(f"the total flow of {where}")
         if analysis is not None and analysis.removed:
@@ -200,7 +200,10 @@ def _settling(
     seen = np.array([candidate.slope @ directions for candidate in candidates]).reshape(
         len(candidates), directions.shape[1]
     )
-    useful = [k for k in range(len(candidates)) if np.linalg.norm(seen[k]) > TOUCHED]
+    strength = np.linalg.norm(seen, axis=1)
+    # Those that see most of what is open come first; alike ones keep their order.
+    order = np.argsort(-np.round(strength, 2), kind="stable")
+    useful = [int(k) for k in order if strength[k] > TOUCHED]
     need = np.linalg.norm(target)
 
     def settles(rows: list[int]) -> bool:

@@ -19,7 +19,7 @@ from core.errors import Fault
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
-from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, VOLUME
+from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, VOLUME
 
 AS_GOOD_AS_EXACT = 1e-12
 """Relative uncertainty that rounding of the arithmetic drowns."""
@@ -30,8 +30,6 @@ DEPENDENT = 1e-6
 AGREEMENT = 1e-8
 """Within this, relative, exact readings that say the same thing agree."""
 START_RIDGE = 1e-10
-MOLAR_DENSITY = {"liquid": 2e4, "gas": 40.0}
-"""mol/m3, orders of magnitude for first guesses only."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -125,38 +123,24 @@ def prepare(account: Account, rows: slice) -> Block:
 def _nominal(block: Block) -> FloatArray:
     """Orders of magnitude of every unknown from single readings, shape (N, n)."""
     account, measured, active = block.account, block.measured, block.active
-    readings, streams = account.readings, account.streams
-    count = len(account.problem.reactions.substances)
-    constants = readings.forms.constants
-    flow = np.zeros(len(measured))
-    for row in np.flatnonzero(readings.flow).tolist():
-        stream = streams[int(readings.stream[row])]
-        numerator = readings.forms.numerators[row]
-        counted = numerator[: len(streams) * count]
-        if readings.forms.exponents[row].any() or not counted.any():
-            per_mole = np.asarray(1 / MOLAR_DENSITY[stream.phase])
-        else:
-            per_mole = np.asarray(counted[counted != 0].mean() * constants[..., row])
-        flow = np.maximum(flow, np.where(active[:, row], np.abs(measured[:, row]) / per_mole, 0.0))
+    readings = account.readings
+    metered = active[:, :-1] & readings.flow
+    flow = np.where(metered, np.abs(measured[:, :-1]) / readings.per_mole, 0.0).max(
+        axis=1, initial=0.0
+    )
     flow = np.where(flow > 0, flow, 1.0)
-
-    kinds = [unknown.kind for unknown in account.unknowns]
-    share = 1 / max(1, kinds.count("flow"))
-    nominal = np.empty((len(measured), len(kinds)))
-    for column, unknown in enumerate(account.unknowns):
-        if unknown.kind == "flow":
-            nominal[:, column] = flow * share
-        elif unknown.kind == "extent":
-            nominal[:, column] = 0.05 * flow * share
-        elif unknown.kind == "volume":
+    share = account.of_flow + 0.05 * account.of_extent
+    nominal: FloatArray = flow[:, None] * (share / max(1, np.count_nonzero(account.of_flow)))
+    for column in np.flatnonzero(share == 0).tolist():
+        unknown = account.unknowns[column]
+        if unknown.kind == "volume":
             nominal[:, column] = _volume(block, unknown.stream, flow)
         elif unknown.kind == "scale":
-            of = readings.stream == unknown.stream
-            peaks = of & ~readings.flow & (readings.cleared >= 0)
+            peaks = (readings.stream == unknown.stream) & ~readings.flow & (readings.cleared >= 0)
             values = np.where(active[:, :-1] & peaks, measured[:, :-1], 0.0).sum(axis=1)
             nominal[:, column] = np.where(values > 0, values, 1.0)
         else:
-            reading = getattr(streams[unknown.stream], unknown.kind)
+            reading = getattr(account.streams[unknown.stream], unknown.kind)
             row = readings.subjects.index(reading.subject)
             usual = 300.0 if unknown.kind == "temperature" else 1e5
             nominal[:, column] = np.where(active[:, row], measured[:, row], usual)
@@ -285,7 +269,7 @@ def natural_size(account: Account, z: FloatArray) -> FloatArray:
     count = len(account.streams) * len(account.problem.reactions.substances)
     largest = np.abs(z @ account.stream_map[:count].T).max(axis=1)
     largest = np.where(largest > 0, largest, 1.0)
-    own = np.array([unknown.kind not in ("flow", "extent") for unknown in account.unknowns])
+    own = ~(account.of_flow | account.of_extent)
     size = np.broadcast_to(largest[:, None], z.shape)
     if own.any():
         size = np.where(own & (z != 0), np.abs(z), size)

@@ -32,6 +32,9 @@ VOLUME, TEMPERATURE, PRESSURE, SCALE = range(4)
 """Places of a stream's further quantities in the stream space."""
 FURTHER = 4
 
+MOLAR_DENSITY = {"liquid": 2e4, "gas": 40.0}
+"""mol/m3, orders of magnitude for first guesses only."""
+
 
 @dataclass(frozen=True, eq=False)
 class Series:
@@ -70,6 +73,8 @@ class Readings:
         A fraction, which cannot exceed 1.
     flow : ndarray of bool, shape (m,)
         Tells how much flows, not only ratios.
+    per_mole : ndarray, shape (m,) or (N, m)
+        Order of magnitude of a flow reading for each mol/s that flows.
     stream : ndarray of int, shape (m,)
         The stream that it is a reading of.
     cleared : ndarray of int, shape (m,)
@@ -89,6 +94,7 @@ class Readings:
     bound: NDArray[np.int8]
     share: BoolArray
     flow: BoolArray
+    per_mole: FloatArray
     stream: NDArray[np.intp]
     cleared: NDArray[np.intp]
     known: BoolArray
@@ -128,6 +134,7 @@ class ReadingWriter:
         self.count = len(self.reactions.substances)
         self.masses = self.reactions.molar_masses
         self.ones = np.ones(self.count)
+        self.unit = np.eye(self.count)
         self.width = len(self.streams) * (self.count + FURTHER)
         self.base_index: dict[tuple[int | str, ...], int] = {}
         self.own = [self.own_phase(stream) for stream in self.streams]
@@ -261,7 +268,7 @@ class ReadingWriter:
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
-            weights = np.where(np.arange(self.count) == reading.substance, weights, 0.0)
+            weights = weights * self.unit[reading.substance]
         if reading.as_analysed:
             weights = self.sampled(g, weights)
         of_volume = reading.kind == "volume"
@@ -309,7 +316,9 @@ class ReadingWriter:
     def density(self, g: int, reading: Measurement) -> None:
         """Enter the density of a liquid: mass over volume."""
         volume = self.further_base(g, VOLUME)
-        self.add(g, reading, self.flows(g, self.masses * self.own[g]), [(volume, -1.0)], cleared=volume)
+        self.add(
+            g, reading, self.flows(g, self.masses * self.own[g]), [(volume, -1.0)], cleared=volume
+        )
 
     def analysis(self, g: int, analysis: Analysis) -> None:
         """Enter every value of an analysis."""
@@ -470,14 +479,16 @@ def read(
             u[:, column] = found.u
             bound[:, column] = 0 if found.bound is None else found.bound
     measured = np.where(np.isfinite(measured), measured, np.nan)
+    forms = writer.forms()
     readings = Readings(
         subjects=tuple(reading.subject for reading in writer.measurements),
-        forms=writer.forms(),
+        forms=forms,
         measured=measured,
         u=u,
         bound=bound,
         share=np.array(writer.share, dtype=bool),
         flow=np.array(writer.flow, dtype=bool),
+        per_mole=_per_mole(writer, forms),
         stream=np.array(writer.stream_of, dtype=np.intp),
         cleared=np.array(writer.cleared, dtype=np.intp),
         known=np.array(writer.known, dtype=bool),
@@ -486,6 +497,16 @@ def read(
     )
     _check(readings)
     return readings, writer
+
+
+def _per_mole(writer: ReadingWriter, forms: Forms) -> FloatArray:
+    """Mean weight of the substances that each reading counts; a typical molar volume of others."""
+    counted = forms.numerators[:, : len(writer.streams) * writer.count]
+    some = np.count_nonzero(counted, axis=1)
+    mean = np.abs(counted).sum(axis=1) / np.maximum(some, 1)
+    typical = np.array([1 / MOLAR_DENSITY[writer.streams[g].phase] for g in writer.stream_of])
+    plain = (some > 0) & ~np.any(forms.exponents != 0, axis=1)
+    return np.where(plain, mean * forms.constants, typical)
 
 
 def _check(readings: Readings) -> None:

@@ -103,9 +103,11 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             failed.update((int(row), outcome[1]) for row in outcome[0])
             continue
         at, fit = outcome.rows, outcome.fit
-        extra = fit.measured.shape[1] - m - 1
-        u = np.pad(block.u[at], ((0, 0), (0, extra)))
-        loosened = np.pad(limits[at], ((0, 0), (0, extra)))
+        u, loosened = block.u[at], limits[at]
+        held = fit.measured.shape[1] - m - 1
+        if held:
+            u = np.pad(u, ((0, 0), (0, held)))
+            loosened = np.pad(loosened, ((0, 0), (0, held)))
         seen = examine(fit, outcome.z, outcome.natural, u, loosened)
         sets = np.zeros((len(at), m), dtype=np.intp)
         if seen.failing.any():
@@ -132,6 +134,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         inflation=out.inflation,
         without_suspects=without,
         failed=failed,
+        first=rows.start,
     )
     return replace(result, notes=tuple(remarks(result)))
 

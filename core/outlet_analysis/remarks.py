@@ -16,11 +16,8 @@ ILL_CONDITIONED = 1e8
 Counted = Callable[[BoolArray], tuple[str, dict[str, Fact]]]
 
 
-def remarks(found: Estimate) -> Iterator[Note]:
-    """Yield what a reader of the estimate must know."""
-    account = found.account
-    problem, samples = account.problem, account.readings.samples
-    names = problem.reactions.names
+def counting(samples: int | None) -> Counted:
+    """Return what says, of a series, how many samples a remark concerns."""
 
     def counted(marks: BoolArray) -> tuple[str, dict[str, Fact]]:
         if samples is None:
@@ -30,6 +27,16 @@ def remarks(found: Estimate) -> Iterator[Note]:
             "samples": len(marks),
         }
 
+    return counted
+
+
+def remarks(found: Estimate) -> Iterator[Note]:
+    """Yield what a reader of the estimate must know."""
+    account = found.account
+    problem, samples = account.problem, account.readings.samples
+    names = problem.reactions.names
+
+    counted = counting(samples)
     if found.per_mole_of_key.any():
         words, facts = counted(found.per_mole_of_key)
         yield Note(
@@ -62,7 +69,10 @@ def remarks(found: Estimate) -> Iterator[Note]:
     if problem.outlet:
         sides.append(("outlet", account.outlet_map))
     for side, forms in sides:
-        flows, u = found.z @ forms.T, found.u_of(forms)
+        flows = found.z @ forms.T
+        if not (flows < 0).any():
+            continue
+        u = found.u_of(forms)
         scale = np.abs(flows).max(axis=-1, keepdims=True)
         below = flows < -np.maximum(2 * u, 1e-9 * scale)
         for i in np.flatnonzero(below.any(axis=0)).tolist():

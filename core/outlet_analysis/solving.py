@@ -11,7 +11,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Fault
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import Fit, IntArray, least_squares
+from core.outlet_analysis.gauss_newton import Fit, IntArray, covariance_at, least_squares
 from core.outlet_analysis.observability import (
     equilibrated,
     open_directions,
@@ -33,7 +33,8 @@ class Fitted:
     fit : Fit
     z, natural : ndarray, shape (len(rows), n)
     directions : ndarray, shape (n, d)
-        What the readings leave open; it was held where it started.
+        What the readings leave open, in the sizes of the unknowns; it was held
+        where it started.
     """
 
     rows: IntArray
@@ -41,6 +42,10 @@ class Fitted:
     z: FloatArray
     natural: FloatArray
     directions: FloatArray
+
+    def covariance(self) -> FloatArray:
+        """Covariance of the unknowns, shape (len(rows), n, n)."""
+        return covariance_at(self.fit, self.z, self.natural)
 
 
 Outcome = Fitted | tuple[IntArray, Fault]

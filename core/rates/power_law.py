@@ -255,7 +255,7 @@ class PowerLaw:
         Refused
             ``negative-order-needs-floor``.
         """
-        bad = absent & (orders < 0)
+        bad: BoolArray = absent & (orders < 0)
         if not bad.any():
             return
         names = reactions.names
@@ -273,8 +273,7 @@ class PowerLaw:
 
 def _of_any_case(flags: BoolArray) -> BoolArray:
     """Return which substances are marked in any case, shape (S,)."""
-    marked: BoolArray = flags.reshape(-1, flags.shape[-1]).any(axis=0)
-    return marked
+    return np.asarray(flags.reshape(-1, flags.shape[-1]).any(axis=0))
 
 
 def rate_subject(reactions: ReactionSet, reaction: int) -> Subject:

@@ -35,8 +35,9 @@ _EPS = float(np.finfo(float).eps)
 _FAR = 690.0  # logit beyond which the rest of the way is no normal number
 # Logits between which one equilibrium is bracketed, and those that a scan looks at where there
 # may be several.
-_ONE: FloatArray = np.array([-_FAR, -60.0, -15.0, -4.0, 0.0, 4.0, 15.0, 60.0, _FAR])
+_ONE: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 17))
 _SCAN: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 257))
+_SCAN_BLOCK = 500  # cases scanned at a time
 
 
 @dataclass(frozen=True, eq=False)
@@ -239,8 +240,8 @@ class ReactionPath:
         if self.opposing is None:
             return np.zeros(self.size)
         absent = self.account.start[:, :-1] == 0
-        power: FloatArray = np.where(absent, self.opposing.exponents, 0.0).sum(axis=1)
-        return power
+        begins: FloatArray = (absent * self.opposing.exponents).sum(axis=1)
+        return begins
 
     def order_at_exhaustion(self) -> FloatArray:
         """Return the power of w that the rate falls with where all is used up, shape (N,)."""
@@ -561,35 +562,38 @@ def _equilibrium(
         Whether there is one at all.
     """
     n = len(ln_c0)
-    last = whole.start.shape[1] - 1
+    falls = whole.change < 0
 
     def imbalance(logit: FloatArray, case: IndexArray) -> FloatArray:
-        rows = _rows(case, n)
-        gone, left = _share(logit), _share(-logit)
-        base = rows(ln_c0) - np.log(whole.amounts(last, gone, left, rows))
-
-        def columns(j: int) -> FloatArray:
-            return base + np.log(whole.amounts(j, gone, left, rows))
-
+        gone, left = _share(logit)[:, None], _share(-logit)[:, None]
+        change = whole.change[case]
+        falling = whole.end[case] - change * left
+        amounts = np.where(falls[case], falling, whole.start[case] + change * gone)
         with np.errstate(divide="ignore", invalid="ignore"):
-            return np.broadcast_to(opposing.ln_value(columns, rows), logit.shape)
+            ln = np.log(amounts)
+            ln = ln[:, :-1] + (ln_c0[case, None] - ln[:, -1:])
+            rows = _rows(case, n)
+            value = opposing.ln_value(lambda j: ln[:, j, None], rows)
+        return np.broadcast_to(value[:, 0], logit.shape)
 
     points = _ONE if one else _SCAN
     values = np.full((n, points.size), -1.0)
     moves: IndexArray = np.flatnonzero(whole.change.any(axis=1))
-    if moves.size:
-        values[moves] = imbalance(np.tile(points, (moves.size, 1)), moves)
+    for first in range(0, len(moves), _SCAN_BLOCK):
+        some = moves[first : first + _SCAN_BLOCK]
+        scanned = imbalance(np.tile(points, some.size), np.repeat(some, points.size))
+        values[some] = scanned.reshape(some.size, -1)
     over = values >= 0
-    first = over.argmax(axis=1)
+    at = over.argmax(axis=1)
     found: BoolArray = np.asarray(over.any(axis=1))
     # At the first point already: no conversion can be told from that of the feed.
     logit = np.where(found, -_FAR, _FAR)
-    inside: IndexArray = np.flatnonzero(found & (first > 0))
+    inside: IndexArray = np.flatnonzero(found & (at > 0))
     if inside.size:
         logit[inside] = find_root(
-            lambda x, i: imbalance(x[:, None], inside[i])[:, 0],
-            points[first[inside] - 1],
-            points[first[inside]],
+            lambda x, i: imbalance(x, inside[i]),
+            points[at[inside] - 1],
+            points[at[inside]],
             subject=("target", "conversion"),
         )
     return _share(logit), _share(-logit), found
@@ -606,11 +610,13 @@ def _check_reach(reactions: ReactionSet, feed: Stream, law: PowerLaw, path: Reac
     bad = beyond | path.at_equilibrium & (left <= 4 * _EPS)
     if bad.any():
         raise out_of_reach(reactions, path, bad)
-    s = account.start.shape[1] - 2
     complete = (left == 0)[:, None]
-    absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & complete
-    law.check_absences(reactions, 0, absent, path.rate.exponents[:, :s])
-    if (account.end[:, -1:] == 0)[complete].any():
+    orders = path.rate.exponents[:, :-1]
+    if orders.min() < 0:
+        s = orders.shape[1]
+        absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & complete
+        law.check_absences(reactions, 0, absent, orders)
+    if (account.end[:, -1] == 0).any() and (account.end[:, -1:] == 0)[complete].any():
         raise refuse(
             "phase-vanishes",
             ("target", "conversion"),
@@ -636,7 +642,12 @@ def out_of_reach(
             "substance": reactions.names[int(path.exhausted[i])],
             "bounded_by": "equilibrium" if path.at_equilibrium[i] else "limiting-reactant",
         }
-        if path.at_equilibrium[i]:
+        if target * limit < 0:
+            detail = (
+                "the target conversion is {target} and from this feed the reaction runs the other "
+                "way, towards {limit}; ask for a conversion between zero and that"
+            )
+        elif path.at_equilibrium[i]:
             detail = (
                 "the target conversion is {target} and equilibrium stands at {limit}, which is "
                 "approached but never reached; ask for less, or shift the equilibrium by feed, "
@@ -648,11 +659,10 @@ def out_of_reach(
                 "fades with it so that no finite size gets there; ask for less, or feed more "
                 "{substance}"
             )
-        elif target * limit < 0 or limit == 0 > target:
+        elif limit == 0:
             detail = (
-                "the target conversion is {target} and the reaction runs the other way from this "
-                "feed, up to {limit}, where {substance} is used up; ask for a conversion between "
-                "zero and that"
+                "the target conversion is {target} and the feed holds no {substance}, so that "
+                "nothing reacts; feed some of it"
             )
         else:
             detail = (

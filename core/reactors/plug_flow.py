@@ -31,6 +31,7 @@ from core.reactors.sizing import (
 )
 
 _RTOL = 1e-12
+_ENDS: FloatArray = np.array([0.0, 1.0])
 
 
 @dataclass(frozen=True, eq=False)
@@ -148,11 +149,7 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
         ``integral-not-converged``.
     """
     n = path.size
-    complete = path.target_left == 0
-    power = 1.0 - path.order_at_exhaustion()
-    if (complete & (power <= 0)).any():
-        raise out_of_reach(reactions, path, complete & (power <= 0), endless=True)
-    share = np.linspace(0.0, 1.0, max(points, 2))
+    share = np.linspace(0.0, 1.0, points) if points > 2 else _ENDS
     left = (1.0 - share) + share * path.target_left[:, None]
     gone = share * path.target_gone[:, None]
     with np.errstate(divide="ignore"):
@@ -167,7 +164,10 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
     panels = edges.shape[1] - 1
     with np.errstate(divide="ignore"):
         ln_limit = np.log(np.abs(path.limit))
-    variable = _Variable.of(path, complete, power)
+    variable = _Variable.of(path)
+    if variable.complete is not None and (variable.complete & (variable.power <= 0)).any():
+        endless = variable.complete & (variable.power <= 0)
+        raise out_of_reach(reactions, path, endless, endless=True)
     edges = variable.from_u(edges)
 
     def integrand(panel: IndexArray, x: FloatArray) -> FloatArray:
@@ -188,12 +188,14 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
         subject=("target", "conversion"),
     )
     steps = found.values.reshape(-1, n, panels)
-    sums = np.concatenate([np.zeros((len(steps), n, 1)), np.cumsum(steps, axis=2)], axis=2)
-    at_points = np.take_along_axis(sums, np.broadcast_to(position, (len(sums), *u.shape)), axis=2)
+    sums = np.zeros((len(steps), n, panels + 1))
+    np.cumsum(steps, axis=2, out=sums[:, :, 1:])
+    if position is not None:
+        sums = np.take_along_axis(sums, np.broadcast_to(position, (len(sums), *u.shape)), axis=2)
     return Advance(
         conversion=share * path.target[:, None],
-        by_feed_volume=at_points[0],
-        by_volume=at_points[-1],
+        by_feed_volume=sums[0],
+        by_volume=sums[-1],
         rate=rate,
         evaluations=int(found.evaluations.sum()) + rate.size,
     )
@@ -219,16 +221,19 @@ class _Variable:
     root: FloatArray | None
 
     @classmethod
-    def of(cls, path: ReactionPath, complete: BoolArray, power: FloatArray) -> _Variable:
-        begins = path.opposing_order_at_start()
-        broken = (begins > 0) & (begins != np.round(begins)) & ~complete
-        with np.errstate(divide="ignore"):
-            root = np.where(begins < 1, np.minimum(1.0 / begins, 8.0), 2.0)
-        return cls(
-            complete if complete.any() else None,
-            power,
-            np.where(broken, root, 1.0) if broken.any() else None,
-        )
+    def of(cls, path: ReactionPath) -> _Variable:
+        complete = path.target_left == 0
+        ends = bool(complete.any())
+        power = 1.0 - path.order_at_exhaustion() if ends else np.ones(path.size)
+        root = None
+        if path.opposing is not None:
+            begins = path.opposing_order_at_start()
+            broken = (begins > 0) & (begins != np.round(begins)) & ~complete
+            if broken.any():
+                with np.errstate(divide="ignore"):
+                    smooth = np.where(begins < 1, np.minimum(1.0 / begins, 8.0), 2.0)
+                root = np.where(broken, smooth, 1.0)
+        return cls(complete if ends else None, power, root)
 
     def from_u(self, u: FloatArray) -> FloatArray:
         """Return the variable at u, shape (N, p)."""
@@ -252,14 +257,15 @@ class _Variable:
         return u, stretch
 
 
-def _with_kinks(path: ReactionPath, u: FloatArray) -> tuple[FloatArray, IndexArray]:
+def _with_kinks(path: ReactionPath, u: FloatArray) -> tuple[FloatArray, IndexArray | None]:
     """Return the panels' edges, shape (N, p), and where the points u, shape (N, n), are in them.
 
-    A floor bends the integrand where it takes hold: a panel ends there.
+    None where the edges are the points themselves. A floor bends the integrand
+    where it takes hold: a panel ends there.
     """
     floored = path.rate.floored + (() if path.opposing is None else path.opposing.floored)
     if not floored:
-        return u, np.broadcast_to(np.arange(u.shape[1]), u.shape)
+        return u, None
     kinks = np.stack([_kink(path, factor) for factor in floored], axis=1)
     edges = np.concatenate([u, np.minimum(kinks, u[:, -1:])], axis=1)
     order = np.argsort(edges, axis=1, kind="stable")

@@ -79,6 +79,7 @@ def join_streams(
     streams: Sequence[MeteredStream],
     conditions: Conditions,
     *,
+    each: Sequence[FloatArray],
     batch: bool,
 ) -> tuple[Stream, tuple[Note, ...]]:
     """Return the stream of known flows that the metered ones make together.
@@ -91,6 +92,8 @@ def join_streams(
     streams : sequence of MeteredStream
     conditions : Conditions
         Of the sum.
+    each : sequence of ndarray, shape (S,)
+        Flows of each of them.
     batch : bool
 
     Returns
@@ -113,7 +116,7 @@ def join_streams(
         )
     temperature = _value(conditions.temperature)
     pressure = _value(conditions.pressure)
-    volume, assumed = _volume(reactions, flows * present, streams, conditions)
+    volume, assumed = _volume(reactions, flows, streams, conditions, each)
     if conditions.phase == "gas" and volume is not None:
         total = float(flows[present].sum())
         if temperature is not None:
@@ -144,6 +147,7 @@ def _volume(
     flows: FloatArray,
     streams: Sequence[MeteredStream],
     conditions: Conditions,
+    each: Sequence[FloatArray],
 ) -> tuple[float | None, tuple[Note, ...]]:
     """Return the volumetric flow of the sum where it can be known, m3/s (batch: m3)."""
     if conditions.volumetric_flow is not None:
@@ -151,11 +155,10 @@ def _volume(
     if conditions.density is not None:
         return float(flows @ reactions.molar_masses) / conditions.density.value, ()
     volumes = []
-    for stream in streams:
+    for stream, own in zip(streams, each, strict=True):
         volume = stated_volume(stream)
         if volume is None and stream.density is not None:
-            mass = float(direct_flows(stream, reactions.molar_masses) @ reactions.molar_masses)
-            volume = mass / stream.density.value
+            volume = float(own @ reactions.molar_masses) / stream.density.value
         if volume is None:
             return None, ()
         volumes.append(volume)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Literal
 
 import numpy as np
@@ -47,13 +48,13 @@ class Stream:
     compressibility: float = 1.0
     liquid_volumetric_flow: float | None = None
 
-    @property
+    @cached_property
     def phase_total(self) -> FloatArray:
         """Total of the substances in the stream's own phase, shape (...), mol/s."""
         total: FloatArray = np.asarray(self.flows[..., self.in_phase].sum(axis=-1))
         return total
 
-    @property
+    @cached_property
     def volumetric_flow(self) -> FloatArray | None:
         """Volumetric flow at the stream's own conditions, m3/s; None if not known.
 

@@ -11,9 +11,9 @@ from flask.testing import FlaskClient
 from hypothesis import given
 from hypothesis import strategies as st
 
+from schemas.shape import ShapeError
 from service.body import MAX_DEPTH, parse_json
 from service.digest import CANONICAL_LIMIT, digest
-from schemas.shape import ShapeError
 from tests.support import SHIFT, assert_refused, changed, post
 
 TABLE = "/v1/stoichiometric-table"
@@ -49,23 +49,31 @@ def test_a_body_that_cannot_be_read_is_refused(client, body, code, place):
     assert response.get_json()["type"] == f"/problems/{code}"
 
 
+# Lone surrogates have no form in UTF-8, and so none in a JSON body.
+TEXT = st.text(st.characters(exclude_categories=["Cs"]), max_size=8)
+
+
 @given(
     st.recursive(
-        st.none() | st.booleans() | st.integers(-(2**53), 2**53) | st.text(max_size=8),
-        lambda inner: st.lists(inner, max_size=4) | st.dictionaries(st.text(max_size=6), inner),
+        st.none() | st.booleans() | st.integers(-(2**53), 2**53) | TEXT,
+        lambda inner: st.lists(inner, max_size=4) | st.dictionaries(TEXT, inner),
         max_leaves=30,
     )
 )
 def test_whatever_is_json_without_repeats_is_read_as_it_stands(document):
     body = json.dumps(document, indent=1).encode()
-    try:
-        read = parse_json(body)
-    except ShapeError as error:
-        assert {fault.code for fault in error.faults} <= {"too-deep", "not-json"}
-        # Only what JSON in UTF-8 cannot hold, or what nests too deep.
-        assert "\\ud" in body.decode() or body.count(b"[") + body.count(b"{") > MAX_DEPTH - 1
+    if _depth(document) > MAX_DEPTH:
+        with pytest.raises(ShapeError, match="too-deep"):
+            parse_json(body)
     else:
-        assert read == document
+        assert parse_json(body) == document
+
+
+def _depth(document) -> int:
+    inner = document.values() if isinstance(document, dict) else document
+    if not isinstance(document, dict | list):
+        return 0
+    return 1 + max(map(_depth, inner), default=0)
 
 
 @pytest.mark.parametrize("sent", [None, "text/plain", "application/x-www-form-urlencoded"])
@@ -200,10 +208,10 @@ def test_at_most_a_hundred_faults_are_listed_and_all_are_counted(client):
     assert document["errors_total"] == 150
 
 
-def test_a_failure_of_ours_tells_nothing_of_itself(app, client, monkeypatch, caplog):
+def test_a_failure_of_ours_tells_nothing_of_itself(client, monkeypatch):
     from service import stoichiometric_table
 
-    def fail(document):
+    def fail(_document):
         raise RuntimeError("secret of /some/path")
 
     monkeypatch.setattr(stoichiometric_table.wire, "read", fail)

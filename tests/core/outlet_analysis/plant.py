@@ -159,6 +159,8 @@ def shift_problem(**more: Any) -> AccountProblem:
         flows={n: (f * KMOL_H, 0.01 * f * KMOL_H) for n, f in SHIFT_FEED.items()},
     )
     outlet = stream_of(
-        reactions, "outlet", analysis=analysis_of(reactions, "outlet", SHIFT_OUTLET, removed=["H2O"])
+        reactions,
+        "outlet",
+        analysis=analysis_of(reactions, "outlet", SHIFT_OUTLET, removed=["H2O"]),
     )
     return account(reactions, "CO", feed, outlet, **more)

@@ -1,0 +1,159 @@
+"""Element closures of the raw readings: what leaves over what enters, before reconciling.
+
+A reconciled account closes by construction, so the closure is taken from the
+same estimation with feed and outlet left unconnected: every stream is then
+what its own readings say. Where no meter tells how much leaves, the inert
+substances tie the outlet to the feed, as one would by hand; an element whose
+closure then holds by that tie alone has none of its own.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Note
+from core.outlet_analysis.account import Account, release_outlet
+from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.preparation import prepare
+from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
+from core.outlet_analysis.remarks import counting
+from core.outlet_analysis.solving import Fitted, fit_block
+from core.reactions.elements import element_matrix
+
+BLOCK = 2048
+
+
+@dataclass(frozen=True, eq=False)
+class Closures:
+    """Elements in, out, and out over in; E elements, absent where the readings do not tell.
+
+    Attributes
+    ----------
+    elements : tuple of str, length E
+    into, out : Uncertain, shape (..., E)
+        mol/s of atoms (batch: mol).
+    ratio : Uncertain, shape (..., E)
+    notes : tuple of Note
+    """
+
+    elements: tuple[str, ...]
+    into: Uncertain
+    out: Uncertain
+    ratio: Uncertain
+    notes: tuple[Note, ...]
+
+
+def element_closures(found: Estimate) -> Closures:
+    """Return the element closures of the readings of an estimate with an outlet."""
+    account = release_outlet(found.account)
+    reactions = account.problem.reactions
+    elements, atoms = element_matrix(reactions)
+    single = account.readings.samples is None
+    samples = 1 if single else len(found.z)
+    count = len(elements)
+    shape = (samples, count)
+    values = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+    spread = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+    unread = np.zeros((samples, 2, len(reactions.substances)), dtype=bool)
+    into, out = atoms @ account.feed_map, atoms @ account.outlet_map
+    tied: BoolArray = np.asarray(np.all(np.abs(into - out) < 1e-12, axis=1) & into.any(axis=1))
+    flowing: BoolArray = np.asarray(np.any([account.feed_map, account.outlet_map], axis=(0, 2)))
+    opaque = [
+        i
+        for i, substance in enumerate(reactions.substances)
+        if substance.formula is None and flowing[i]
+    ]
+    if count and not opaque:
+        for first in range(0, samples, BLOCK):
+            rows = slice(found.first + first, found.first + min(first + BLOCK, samples))
+            for outcome in fit_block(prepare(account, rows), None):
+                if not isinstance(outcome, Fitted):
+                    continue
+                at = first + outcome.rows
+                covariance = outcome.covariance()
+                everything = np.concatenate([into, out, account.feed_map, account.outlet_map])
+                hidden_of = np.split(_open(outcome, everything), [count, 2 * count])
+                open_in, open_out = hidden_of[:2]
+                for name, forms, hidden in (("into", into, open_in), ("out", out, open_out)):
+                    part = forms_of(outcome.z, covariance, forms)
+                    values[name][at] = np.where(hidden, np.nan, part.value)
+                    spread[name][at] = np.where(hidden, np.nan, part.u)
+                part = ratios(outcome.z, covariance, out, into)
+                hidden = open_in | open_out | tied
+                values["ratio"][at] = np.where(hidden, np.nan, part.value)
+                spread["ratio"][at] = np.where(hidden, np.nan, part.u)
+                unread[at] = hidden_of[2].reshape(unread.shape[1:])
+    notes = _notes(account, elements, atoms, tied, unread, opaque)
+    into_of, out_of, ratio_of = (
+        Uncertain(values[name][0], spread[name][0])
+        if single
+        else Uncertain(values[name], spread[name])
+        for name in ("into", "out", "ratio")
+    )
+    return Closures(elements, into_of, out_of, ratio_of, tuple(notes))
+
+
+def _open(outcome: Fitted, forms: FloatArray) -> BoolArray:
+    """Which forms change along what the readings leave open."""
+    if not outcome.directions.shape[1]:
+        return np.zeros(len(forms), dtype=bool)
+    length = np.linalg.norm(forms * outcome.natural[0], axis=1)
+    moved = np.linalg.norm(forms @ outcome.directions, axis=1)
+    return np.asarray(moved > 1e-6 * np.where(length > 0, length, 1.0))
+
+
+def _notes(
+    account: Account,
+    elements: tuple[str, ...],
+    atoms: FloatArray,
+    tied: BoolArray,
+    unread: np.ndarray[tuple[int, ...], np.dtype[np.bool_]],
+    opaque: list[int],
+) -> list[Note]:
+    names = account.problem.reactions.names
+    if opaque:
+        return [
+            Note(
+                "closure-opaque",
+                "no element closure is given: the atoms of {substances} are not known; declare"
+                " a formula to have it",
+                subject=("closure",),
+                facts={"substances": ", ".join(names[i] for i in opaque)},
+            )
+        ]
+    counted = counting(account.readings.samples)
+    notes = []
+    for e, element in enumerate(elements):
+        holds = unread & (atoms[e] > 0)
+        marks: BoolArray = np.asarray(holds.any(axis=(1, 2)))
+        if marks.any():
+            words, facts = counted(marks)
+            found = holds.any(axis=0)
+            where = [
+                f"{', '.join(names[i] for i in np.flatnonzero(found[side]))} {way}"
+                for side, way in ((0, "fed"), (1, "leaving"))
+                if found[side].any()
+            ]
+            notes.append(
+                Note(
+                    "closure-not-read",
+                    "the closure of {element} cannot be formed from the readings alone, which"
+                    " do not tell the flow of {substances}" + words,
+                    subject=("closure", element),
+                    facts={"element": element, "substances": " and ".join(where), **facts},
+                )
+            )
+        elif tied[e]:
+            notes.append(
+                Note(
+                    "closure-by-tie",
+                    "the closure of {element} says nothing: no meter tells how much leaves, and"
+                    " the inert substances that hold it were used to tell",
+                    subject=("closure", element),
+                    facts={"element": element},
+                )
+            )
+    return notes

@@ -1,0 +1,351 @@
+"""Conversion, yields and selectivities of an estimated account, with their uncertainty."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+from functools import lru_cache
+from typing import Literal
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Note, refuse
+from core.outlet_analysis.account import Account
+from core.outlet_analysis.closure import Closures, element_closures
+from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
+from core.outlet_analysis.remarks import counting
+from core.reactions.reaction_set import ReactionSet
+
+YieldBasis = Literal["key", "element"]
+
+POORLY_KNOWN = 0.25
+"""Standard uncertainty of a conversion from which on it says little."""
+
+
+@dataclass(frozen=True, eq=False)
+class Yields:
+    """Yields and selectivities of the P products.
+
+    Attributes
+    ----------
+    basis : "key" or "element"
+    element : str or None
+    products : tuple of int, length P
+        Substances that a reaction makes from the key's side; on element basis
+        those that hold the element.
+    factors : ndarray, shape (P,)
+        s_P: moles of key (or atoms of the element per those in the key) that a
+        mole of product stands for; not a number where there is no one such.
+    yields : Uncertain, shape (..., P)
+        s_P (F_P - F_P0)/F_A0.
+    selectivities : Uncertain, shape (..., P)
+        s_P (F_P - F_P0)/(F_A0 - F_A).
+    """
+
+    basis: YieldBasis
+    element: str | None
+    products: tuple[int, ...]
+    factors: FloatArray
+    yields: Uncertain
+    selectivities: Uncertain
+
+
+@dataclass(frozen=True, eq=False)
+class ConversionResults:
+    """What an account says of the reactor; a ratio is not a number where it has no meaning.
+
+    Attributes
+    ----------
+    conversion : Uncertain, shape (...)
+        (F_A0 - F_A)/F_A0, net.
+    extents : Uncertain, shape (..., R), or None
+        mol/s (batch: mol); None of dependent reactions.
+    key_consumed_by, key_produced_by : Uncertain, shape (..., R), or None
+        -nu_Aj xi_j, and nu_Aj xi_j, over the sum of the terms that consume the
+        key; each reaction stands in one of the two.
+    yields : Yields
+    closures : Closures or None
+    without_suspects : tuple of (removed readings, conversion)
+        For each way to leave out one reading of every suspect set.
+    notes : tuple of Note
+    """
+
+    conversion: Uncertain
+    extents: Uncertain | None
+    key_consumed_by: Uncertain | None
+    key_produced_by: Uncertain | None
+    yields: Yields
+    closures: Closures | None
+    without_suspects: tuple[tuple[tuple[int, ...], Uncertain], ...]
+    notes: tuple[Note, ...]
+
+
+def conversion_results(
+    found: Estimate,
+    *,
+    basis: YieldBasis = "key",
+    element: str | None = None,
+    per_key: Mapping[int, float] | None = None,
+    closures: bool = True,
+) -> ConversionResults:
+    """Return conversion, yields, selectivities and closures of an estimate with an outlet.
+
+    Parameters
+    ----------
+    found : Estimate
+    basis : "key" or "element"
+        What a mole of product is weighed by in yields and selectivities.
+    element : str or None
+        Of the element basis; None is carbon.
+    per_key : Mapping of int to float
+        Moles of key that a mole of product stands for, where the caller says.
+    closures : bool
+        Whether to form the element closures, which take an estimation more.
+
+    Raises
+    ------
+    Refused
+        ``element-not-in-key``, ``element-not-named``.
+    """
+    account, problem = found.account, found.account.problem
+    reactions, key = problem.reactions, problem.key
+    z, covariance = found.z, found.covariance
+    fed, left = account.feed_map[key], account.outlet_map[key]
+    stated = tuple(sorted((per_key or {}).items()))
+    chosen, factors, of_factors = _factors(reactions, key, basis, element, stated)
+    products, notes = list(chosen), list(of_factors)
+
+    # One call gives the conversion, every yield and every selectivity.
+    made = np.nan_to_num(factors)[:, None] * (account.outlet_map - account.feed_map)[products]
+    count = len(products)
+    numerators = np.concatenate([(fed - left)[None], made, made])
+    denominators = np.concatenate(
+        [np.broadcast_to(fed, (1 + count, len(fed))), np.broadcast_to(fed - left, made.shape)]
+    )
+    all_ratios = ratios(z, covariance, numerators, denominators)
+    nowhere = np.isnan(factors)
+
+    def part(first: int, last: int, hidden: BoolArray) -> Uncertain:
+        return Uncertain(
+            np.where(hidden, np.nan, all_ratios.value[..., first:last]),
+            np.where(hidden, np.nan, all_ratios.u[..., first:last]),
+        )
+
+    conversion = Uncertain(all_ratios.value[..., 0], all_ratios.u[..., 0])
+    unique = problem.reactions.rank == len(problem.reactions.reactions)
+    consumed = produced = None
+    if unique:
+        consumed, produced = _key_by(account, z, covariance)
+    results = ConversionResults(
+        conversion=conversion,
+        extents=forms_of(z, covariance, account.extent_map) if unique else None,
+        key_consumed_by=consumed,
+        key_produced_by=produced,
+        yields=Yields(
+            basis,
+            _element(reactions, key, element) if basis == "element" else None,
+            tuple(products),
+            factors,
+            part(1, 1 + count, nowhere),
+            part(1 + count, 1 + 2 * count, nowhere),
+        ),
+        closures=element_closures(found) if closures else None,
+        without_suspects=tuple(
+            (
+                way.removed,
+                _first(ratios(way.z, way.covariance, (fed - left)[None], fed[None])),
+            )
+            for way in found.without_suspects
+        ),
+        notes=(),
+    )
+    notes += _null_notes(found, results)
+    if results.closures is not None:
+        notes += results.closures.notes
+    return ConversionResults(**{**vars(results), "notes": tuple(notes)})
+
+
+def _first(of: Uncertain) -> Uncertain:
+    return Uncertain(of.value[..., 0], of.u[..., 0])
+
+
+def _key_by(account: Account, z: FloatArray, covariance: FloatArray) -> tuple[Uncertain, Uncertain]:
+    """Shares of the reactions in what is consumed of the key."""
+    problem = account.problem
+    nu = problem.reactions.nu[:, problem.key]
+    terms = -nu[:, None] * account.extent_map
+    takes_part = nu != 0
+    consuming = (z @ terms.T >= 0) & takes_part
+    total = consuming.astype(float) @ terms
+    signed = ratios(z, covariance, terms, total[..., None, :])
+    makes = takes_part & ~consuming
+
+    def of(marks: BoolArray, sign: float) -> Uncertain:
+        return Uncertain(
+            np.where(marks, sign * signed.value, np.nan), np.where(marks, signed.u, np.nan)
+        )
+
+    return of(consuming, 1.0), of(makes, -1.0)
+
+
+def _element(reactions: ReactionSet, key: int, element: str | None) -> str:
+    """Return the element of an element basis, which the key must hold."""
+    formula = reactions.substances[key].formula
+    name = element or "C"
+    if formula is not None and formula.elements.get(name):
+        return name
+    held = ", ".join(formula.elements) if formula is not None else "no known element"
+    if element is None:
+        raise refuse(
+            "element-not-named",
+            ("yields", "element"),
+            "the element basis counts carbon unless another element is named, and the key {key}"
+            " holds none; name one of: {held}",
+            key=reactions.names[key],
+            held=held,
+        )
+    raise refuse(
+        "element-not-in-key",
+        ("yields", "element"),
+        "found the element {element}, which the key {key} does not hold; name one of: {held}",
+        element=element,
+        key=reactions.names[key],
+        held=held,
+    )
+
+
+def makes(reactions: ReactionSet, key: int, j: int) -> list[int]:
+    """Substances on the product side of reaction ``j``.
+
+    That is the right-hand side as written, or of a reversible reaction with
+    the key among its products the left-hand side.
+    """
+    nu = reactions.nu[j]
+    turned = reactions.reactions[j].reversible and nu[key] > 0
+    return [int(i) for i in np.flatnonzero(nu < 0 if turned else nu > 0) if i != key]
+
+
+@lru_cache(maxsize=128)
+def _factors(
+    reactions: ReactionSet,
+    key: int,
+    basis: YieldBasis,
+    element: str | None,
+    stated: tuple[tuple[int, float], ...],
+) -> tuple[tuple[int, ...], FloatArray, tuple[Note, ...]]:
+    """Products, their factors s_P, and a note where there is none."""
+    per_key = dict(stated)
+    made_by: dict[int, list[int]] = {}
+    for j in range(len(reactions.reactions)):
+        for i in makes(reactions, key, j):
+            made_by.setdefault(i, []).append(j)
+    products = sorted(made_by)
+    names = reactions.names
+    notes: list[Note] = []
+    factors: list[float] = []
+    if basis == "element":
+        name = _element(reactions, key, element)
+        in_key = reactions.substances[key].formula
+        assert in_key is not None
+        kept = []
+        for i in products:
+            formula = reactions.substances[i].formula
+            if formula is not None and not formula.elements.get(name):
+                continue
+            kept.append(i)
+            if formula is None:
+                factors.append(np.nan)
+                notes.append(_no_factor(names[i], f"its content of {name} is not known"))
+            else:
+                factors.append(float(formula.elements[name] / in_key.elements[name]))
+        return tuple(kept), np.array(factors), tuple(notes)
+    for i in products:
+        if i in per_key:
+            factors.append(float(per_key[i]))
+            continue
+        shares = {_per_product(reactions, j, key, i) for j in made_by[i]}
+        share = shares.pop()
+        if shares or share is None:
+            factors.append(np.nan)
+            notes.append(
+                _no_factor(
+                    names[i],
+                    f"the reactions that make it do not all consume {names[key]} at one ratio;"
+                    " state per_key or an element basis",
+                )
+            )
+        else:
+            factors.append(float(share))
+    return tuple(products), np.array(factors), tuple(notes)
+
+
+def _per_product(reactions: ReactionSet, j: int, key: int, product: int) -> Fraction | None:
+    """|nu_A|/nu_P of reaction ``j``; None where it does not consume the key."""
+    coefficients = reactions.reactions[j].coefficients
+    of_key = coefficients.get(reactions.names[key], Fraction(0))
+    of_product = coefficients[reactions.names[product]]
+    share = -Fraction(of_key) / Fraction(of_product)
+    return share if share > 0 else None
+
+
+def _no_factor(product: str, why: str) -> Note:
+    return Note(
+        "yield-factor-missing",
+        "no yield or selectivity of {product} is given: " + why,
+        subject=("yields", product),
+        facts={"product": product},
+    )
+
+
+def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
+    """Notes on ratios whose denominators are next to nothing, and on a poor conversion."""
+    account = found.account
+    names, key = account.problem.reactions.names, account.problem.key
+    counted = counting(account.readings.samples)
+    estimated = np.isfinite(found.chi_square)
+    notes: list[Note] = []
+    no_feed = estimated & np.isnan(results.conversion.value)
+    if no_feed.any():
+        words, facts = counted(no_feed)
+        notes.append(
+            Note(
+                "denominator-near-zero",
+                "no conversion or yield is given: the flow of {key} fed is within twice its"
+                " uncertainty of zero" + words,
+                severity="warning",
+                subject=("conversion",),
+                facts={"key": names[key], **facts},
+            )
+        )
+    of = results.yields
+    given = ~np.isnan(of.factors)
+    lost = np.isnan(of.selectivities.value) & given
+    no_change = estimated & lost.any(axis=-1)
+    if no_change.any():
+        words, facts = counted(no_change)
+        notes.append(
+            Note(
+                "denominator-near-zero",
+                "no selectivity is given: the amount of {key} converted is within twice its"
+                " uncertainty of zero" + words,
+                subject=("selectivities",),
+                facts={"key": names[key], **facts},
+            )
+        )
+    poor = estimated & (np.nan_to_num(results.conversion.u) > POORLY_KNOWN)
+    if poor.any():
+        words, facts = counted(poor)
+        notes.append(
+            Note(
+                "conversion-poorly-known",
+                "the readings determine the conversion only loosely; its uncertainty counts"
+                " more than its value" + words,
+                severity="warning",
+                subject=("conversion",),
+                facts=facts,
+            )
+        )
+    return notes

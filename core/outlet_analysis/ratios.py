@@ -1,0 +1,48 @@
+"""Linear forms of the unknowns and ratios of them, with their uncertainty.
+
+Linear propagation through the covariance of the unknowns (GUM, JCGM 100:2008,
+5.2.2), with the gradients written out.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import FloatArray
+
+NEAR_ZERO = 2.0
+"""A denominator within so many of its standard uncertainties of zero gives no ratio."""
+
+
+@dataclass(frozen=True, eq=False)
+class Uncertain:
+    """Values and their standard uncertainties, of one shape; not a number where absent."""
+
+    value: FloatArray
+    u: FloatArray
+
+
+def forms_of(z: FloatArray, covariance: FloatArray, forms: FloatArray) -> Uncertain:
+    """Linear forms (k, n) of ``z`` (..., n), shape (..., k)."""
+    variance = ((forms @ covariance) * forms).sum(axis=-1)
+    return Uncertain(z @ forms.T, np.sqrt(np.maximum(variance, 0.0)))
+
+
+def ratios(
+    z: FloatArray, covariance: FloatArray, numerators: FloatArray, denominators: FloatArray
+) -> Uncertain:
+    """Ratios of linear forms (k, n), or (..., k, n), shape (..., k)."""
+    above = (numerators * z[..., None, :]).sum(axis=-1)
+    below = (denominators * z[..., None, :]).sum(axis=-1)
+    variance = ((denominators @ covariance) * denominators).sum(axis=-1)
+    near = np.abs(below) <= NEAR_ZERO * np.sqrt(np.maximum(variance, 0.0))
+    safe = np.where(near, 1.0, below)
+    value = above / safe
+    slope = (numerators - value[..., None] * denominators) / safe[..., None]
+    spread = ((slope @ covariance) * slope).sum(axis=-1)
+    return Uncertain(
+        np.where(near, np.nan, value),
+        np.where(near, np.nan, np.sqrt(np.maximum(spread, 0.0))),
+    )

@@ -1,0 +1,28 @@
+"""``POST /v1/conversion``."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from flask import Blueprint
+
+from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.reconciliation import estimate
+from schemas import conversion as wire
+from schemas.answer import Answer
+from schemas.contract import operation
+from service.endpoint import calculation
+
+blueprint = Blueprint("conversion", __name__)
+
+
+@calculation(blueprint, operation("conversion"))
+def answer(document: Any) -> Answer:
+    """Return the account that fits the readings best, and what it says of the reactor."""
+    question, edge = wire.read(document)
+    with edge.locating():
+        found = estimate(question.problem)
+        results = conversion_results(
+            found, basis=question.basis, element=question.element, per_key=question.per_key
+        )
+    return wire.write(question, found, results, edge)

@@ -1,0 +1,103 @@
+"""Short ways to write a sizing problem in a test; SI throughout."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from fractions import Fraction
+
+import numpy as np
+
+from core.rates.constants import Constant
+from core.rates.power_law import ByAffinity, PowerLaw, ReverseConstant
+from core.rates.power_product import Driving
+from core.reactions.reaction_set import Reaction, ReactionSet
+from core.reactors.sizing import ReactorKind, Sizing, SizingProblem, size_reactor
+from core.streams.stream import Stream
+from core.substances.substance import Substance
+
+
+def reaction_set(nu: Mapping[str, float], *, condensed: tuple[str, ...] = ()) -> ReactionSet:
+    """Return one reaction; every substance of the account stands in ``nu``, inerts with 0."""
+    substances = tuple(
+        Substance(name, 0.05, phase="solid" if name in condensed else None) for name in nu
+    )
+    coefficients = {name: Fraction(value).limit_denominator(1000) for name, value in nu.items()}
+    return ReactionSet(
+        substances,
+        (Reaction("r1", coefficients, reversible=True),),
+        np.array([list(nu.values())], dtype=float),
+        1,
+        np.full(len(nu), 0.05),
+    )
+
+
+def vector(reactions: ReactionSet, values: Mapping[str, float]) -> np.ndarray:
+    return np.array([float(values.get(name, 0.0)) for name in reactions.names])
+
+
+def liquid(
+    reactions: ReactionSet, concentrations: Mapping[str, float], v: float = 1e-3, *, batch=False
+) -> Stream:
+    """Return a liquid feed, mol/m3 at v m3/s (batch: m3)."""
+    flows = vector(reactions, concentrations) * v
+    inside = np.array([substance.phase != "solid" for substance in reactions.substances])
+    return Stream(flows, inside, "liquid", batch=batch, liquid_volumetric_flow=v)
+
+
+def gas(
+    reactions: ReactionSet,
+    flows: Mapping[str, float],
+    temperature: float | None = 500.0,
+    pressure: float | None = 2e5,
+    *,
+    batch=False,
+    compressibility: float = 1.0,
+) -> Stream:
+    """Return a gas feed, mol/s (batch: mol)."""
+    inside = np.array([substance.phase != "solid" for substance in reactions.substances])
+    return Stream(
+        vector(reactions, flows),
+        inside,
+        "gas",
+        batch=batch,
+        temperature=temperature,
+        pressure=pressure,
+        compressibility=compressibility,
+    )
+
+
+def power_law(
+    reactions: ReactionSet,
+    orders: Mapping[str, float],
+    k: float = 0.01,
+    *,
+    of: str | None = None,
+    driving: Driving = "concentration",
+    reverse: ByAffinity | ReverseConstant | None = None,
+    floors: Mapping[str, float] | None = None,
+    **factors: float,
+) -> PowerLaw:
+    return PowerLaw(
+        0 if of is None else reactions.index(of),
+        vector(reactions, orders),
+        Constant(k),
+        driving,
+        reverse,
+        None if floors is None else vector(reactions, floors),
+        **factors,
+    )
+
+
+def size(
+    reactions: ReactionSet,
+    feed: Stream,
+    law: PowerLaw,
+    target: float | np.ndarray,
+    reactor: ReactorKind,
+    *,
+    key: str | None = None,
+    points: int = 0,
+) -> Sizing:
+    """Return the answer; the first substance is the key unless another is named."""
+    index = 0 if key is None else reactions.index(key)
+    return size_reactor(SizingProblem(reactions, index, feed, law, target, reactor), points)
