@@ -8,6 +8,8 @@ step solves
     [ J'WJ   A' ] [ dz     ]   [ J'W (y - h) ]
     [ A     -D  ] [ lambda ] = [ y_c - h_c   ]
 
+with D of the compliances, so that in the end y_c - h_c = -D lambda.
+
 Source of the method: Gauss-Newton with Lagrange multipliers, J. Nocedal,
 S. J. Wright, Numerical Optimization, 2nd ed., Springer, 2006, ch. 10 and 18;
 the step is shortened on their l1 merit function (section 18.3),
@@ -90,8 +92,14 @@ class Curvature:
         Of the unknowns.
     variance : ndarray, shape (N, m)
         Of the fitted values.
+    residual : ndarray, shape (N, m)
+        measured - fitted, one linear step of the fit further on.
     redundancy : ndarray, shape (N, m)
         1 - leverage; 0 of a missing or an exact reading.
+    control : ndarray, shape (N, m)
+        How firmly the other readings hold this one, 0 to about 1: the
+        redundancy of a soft reading; of a stiff one a measure that does not
+        vanish with its u.
     slopes : ndarray, shape (N, m, n)
         dh/dz.
     inflation : ndarray, shape (N,)
@@ -101,7 +109,9 @@ class Curvature:
 
     covariance: FloatArray
     variance: FloatArray
+    residual: FloatArray
     redundancy: FloatArray
+    control: FloatArray
     slopes: FloatArray
     inflation: FloatArray
 
@@ -110,7 +120,9 @@ class Curvature:
         return Curvature(
             self.covariance[rows],
             self.variance[rows],
+            self.residual[rows],
             self.redundancy[rows],
+            self.control[rows],
             self.slopes[rows],
             self.inflation[rows],
         )
@@ -340,18 +352,36 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     inflation = scaled.diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
     inflation = np.where(np.isnan(inflation), np.inf, inflation)
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
+    residual = fit.measured - found.value
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
+    force = (slopes.transpose(0, 2, 1) @ (fit.weight * residual)[:, :, None])[:, :, 0]
+    right = system.size * force
     if c:
-        # u^2 (A H^-1 A' + D)^-1 from the corner of the inverse: 1 - leverage without cancellation.
-        corner = -inverse.diagonal(axis1=1, axis2=2)[:, n:]
         there = np.isfinite(fit.compliance)
-        stiffness = np.where(there, fit.compliance, 0.0) / system.gauge**2
-        redundancy[:, fit.stiff] = np.where(there, stiffness * corner, 0.0)
-        variance[:, fit.stiff] = np.where(
-            there,
-            fit.compliance * (1 - redundancy[:, fit.stiff]),
-            variance[:, fit.stiff],
+        gap = np.where(there, residual[:, fit.stiff], 0.0)
+        right = np.concatenate([right, gap / system.gauge], axis=1)
+    step = (inverse @ right[:, :, None])[:, :, 0]
+    residual = residual - (slopes @ (system.size * step[:, :n])[:, :, None])[:, :, 0]
+    control = redundancy
+    if c:
+        # u^2 (A H^-1 A' + D)^-1 from the corner of the inverse: 1 - leverage without
+        # cancellation, and the residual from the multiplier likewise.
+        corner = -inverse.diagonal(axis1=1, axis2=2)[:, n:]
+        compliance = np.where(there, fit.compliance, 0.0)
+        held = compliance / system.gauge**2 * corner
+        redundancy[:, fit.stiff] = held
+        variance[:, fit.stiff] = np.where(there, compliance * (1 - held), variance[:, fit.stiff])
+        residual[:, fit.stiff] = np.where(
+            there, -compliance * step[:, n:] / system.gauge, residual[:, fit.stiff]
         )
+        control = np.array(redundancy)
+        control[:, fit.stiff] = np.where(compliance > 0, corner, 0.0)
     return Curvature(
-        covariance, np.maximum(variance, 0.0), np.clip(redundancy, 0.0, 1.0), slopes, inflation
+        covariance,
+        np.maximum(variance, 0.0),
+        residual,
+        np.clip(redundancy, 0.0, 1.0),
+        control,
+        slopes,
+        inflation,
     )

@@ -23,7 +23,7 @@ from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, 
 
 AS_GOOD_AS_EXACT = 1e-12
 """Relative uncertainty that rounding of the arithmetic drowns."""
-NEARLY_EXACT = 1e-6
+NEARLY_EXACT = 1e-4
 """Relative uncertainty below which a weight would drown the others."""
 DEPENDENT = 1e-6
 """Part of an exact reading that the other exact ones must leave for it to be one of its own."""

@@ -26,7 +26,6 @@ from core.outlet_analysis.remarks import remarks
 from core.outlet_analysis.solving import Fitted, fit_block
 from core.outlet_analysis.testing import (
     DETECTABLE,
-    NO_REDUNDANCY,
     Examined,
     WithoutSuspects,
     examine,
@@ -143,7 +142,7 @@ def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> 
     bound: NDArray[np.int8] = block.bound[:, :-1]
     there, limited = np.isfinite(measured), bound != 0
     redundancy = np.where(limited | ~there, np.nan, out.redundancy)
-    checked = redundancy > NO_REDUNDANCY
+    checked = redundancy > 0
     detectable = DETECTABLE * u / np.sqrt(np.where(checked, redundancy, 1.0))
     inside = np.where(bound == BELOW, out.reconciled <= measured, out.reconciled >= measured)
     known = limited & there & np.isfinite(out.reconciled)

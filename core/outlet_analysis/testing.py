@@ -30,10 +30,12 @@ LEVEL = 0.05
 """Share of false alarms of the global test and of all measurement tests together."""
 DETECTABLE = float(ndtri(1 - 0.05 / 2) + ndtri(1 - 0.10))
 """Baarda's non-centrality: 5 % false alarms of one two-sided test, 10 % of errors missed."""
-NO_REDUNDANCY = 1e-6
+NO_REDUNDANCY = 1e-9
+NO_REDUNDANCY_BESIDE_LIMITS = 1e-5
+"""Redundancy below which a reading is checked by nothing but rounding, or by limits let loose."""
 PARALLEL = 1 - 1e-6
 """Correlation of two residuals from which on no reading tells which of the two errs."""
-LOOSE = 1e-6
+LOOSE = 1e-8
 """Weight left to a limit where the readings proper are tested."""
 MOST_ALTERNATIVES = 24
 
@@ -82,20 +84,20 @@ def examine(
     """Test the readings proper: soft or nearly exact, those of ``limits`` (N, m') let loose."""
     at_solution = curvature(fit, z, natural)
     value = fit.forms.at(z).value
-    residual = fit.measured - value
     weight = np.array(fit.weight)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
     weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
     loose = at_solution
+    least = np.full((len(z), 1), NO_REDUNDANCY)
     if limits.any():
         let_go = replace(fit, weight=np.where(limits, LOOSE * fit.weight, fit.weight))
         loose = curvature(let_go, z, natural)
-        force = np.where(limits, LOOSE * weight, weight) * residual
-        push = loose.slopes.transpose(0, 2, 1) @ force[:, :, None]
-        residual = residual - (loose.slopes @ (loose.covariance @ push))[:, :, 0]
+        least[limits.any(axis=1)] = NO_REDUNDANCY_BESIDE_LIMITS
+    residual = loose.residual
     proper = (weight > 0) & ~limits
     redundancy = np.where(proper, loose.redundancy, 0.0)
-    testable = redundancy > NO_REDUNDANCY
+    rounding = 1e-15 * loose.inflation[:, None]
+    testable = proper & (loose.control > np.maximum(least, rounding)) & (redundancy > 0)
     scale = u * np.sqrt(np.where(testable, redundancy, 1.0))
     standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
     chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
