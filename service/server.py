@@ -7,7 +7,6 @@ one BLAS thread in each.
 from __future__ import annotations
 
 import contextlib
-import gc
 import math
 import os
 import socket
@@ -138,8 +137,6 @@ def _warm_up(app: flask.Flask) -> None:
         path = f"/v1/{example.operation}"
         with app.test_request_context(path, method="POST", json=example.request):
             app.dispatch_request()
-    gc.collect()
-    gc.freeze()  # the collector's marks would have each worker copy these pages
 
 
 class _Logger(glogging.Logger):  # type: ignore[misc]
@@ -224,6 +221,7 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
     """
 
     _requests = logs.logger()
+    sockets: list[Any]
 
     def handle_error(self, req: Any, client: Any, addr: Any, exc: BaseException) -> None:  # noqa: ARG002
         status, code, detail = _fault(exc)
@@ -234,7 +232,7 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
             "request", request_id=request_id, method=None, route=None, status=status, code=code
         )
         # Which path was meant is not known; "/" stands for the service.
-        with self.wsgi.test_request_context(headers={"X-Request-ID": request_id}):
+        with self.wsgi.test_request_context():
             body = problem(status, code, detail).get_data()
         head = (
             f"HTTP/1.1 {status} {HTTPStatus(status).phrase}\r\n"
@@ -258,8 +256,9 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
 
     @property
     def worker_connections(self) -> int:
+        """How many connections it may hold: one for each thread, beside those that wait."""
         waiting = len(self.keepalived_conns) + len(self.pending_conns)
-        return min(self.cfg.worker_connections, self.cfg.threads + waiting)
+        return int(min(self.cfg.worker_connections, self.cfg.threads + waiting))
 
     @worker_connections.setter
     def worker_connections(self, _configured: int) -> None:
