@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,6 +13,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.readings import FURTHER, VOLUME
 from core.outlet_analysis.testing import WithoutSuspects
 
 
@@ -78,6 +80,9 @@ class Estimate:
         chi_square is above its limit.
     per_mole_of_key : ndarray of bool, shape (...)
         No reading tells how much flows: flows are per mole of key fed.
+    told : ndarray of bool, shape (..., n)
+        Unknowns that the readings tell. The others stand where they were
+        guessed; no flow or extent depends on them.
     inflation : ndarray, shape (...)
         Largest inflation of a variance by what the readings fail to tell apart.
     without_suspects : tuple of WithoutSuspects
@@ -100,6 +105,7 @@ class Estimate:
     p_value: FloatArray
     inconsistent: BoolArray
     per_mole_of_key: BoolArray
+    told: BoolArray
     inflation: FloatArray
     without_suspects: tuple[WithoutSuspects, ...] = ()
     failed: Mapping[int, Fault] = field(default_factory=dict)
@@ -133,3 +139,24 @@ class Estimate:
         """Standard uncertainties of linear forms (k, n) of ``z``, shape (..., k)."""
         variance = ((forms @ self.covariance) * forms).sum(axis=-1)
         return np.asarray(np.sqrt(np.maximum(variance, 0.0)))
+
+    def liquid_volume(self, side: Literal["feed", "outlet"]) -> FloatArray | None:
+        """Volumetric flow of the liquid streams of a side, shape (...), m3/s (batch: m3).
+
+        Not a number where the readings do not tell it; None where none of
+        them speaks of it.
+        """
+        problem = self.account.problem
+        feeds = len(problem.feed)
+        first = len(self.account.streams) * len(problem.reactions.substances)
+        rows = [
+            first + g * FURTHER + VOLUME
+            for g, stream in enumerate(self.account.streams)
+            if (g < feeds) == (side == "feed") and stream.phase == "liquid"
+        ]
+        forms = self.account.stream_map[rows]
+        if not rows or not forms.any(axis=1).all():
+            return None
+        form = forms.sum(axis=0)
+        told = self.told[..., form != 0].all(axis=-1)
+        return np.asarray(np.where(told, self.z @ form, np.nan))

@@ -37,6 +37,7 @@ SMALL_STEP = 1e-7
 """Last step, relative to the natural size of the unknowns, where equations must be met."""
 ROUNDING_STEP = 1e-13
 """A step that rounding alone can make, relative."""
+ROUNDING_GAP = 1e-9
 SINGULAR = 1e13
 """Inflation of a variance beyond which double precision cannot tell unknowns apart."""
 
@@ -268,7 +269,9 @@ def _shortened(
     if hard:
         exact = fit.compliance == 0
         there = np.isfinite(fit.compliance) & ~exact
-        stiffness = np.where(there, 0.5 / np.where(there, fit.compliance, 1.0), 0.0)
+        # Below what rounding leaves of a residual its square says nothing.
+        soft = fit.compliance + (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
+        stiffness = np.where(there, 0.5 / np.where(there, soft, 1.0), 0.0)
         penalty = np.where(
             exact, 2 * np.abs(np.where(np.isfinite(multipliers), multipliers, 0.0)), 0.0
         )

@@ -21,8 +21,7 @@ from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
 from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, VOLUME
 
-AS_GOOD_AS_EXACT = 1e-12
-"""Relative uncertainty that rounding of the arithmetic drowns."""
+SQUARE_UNDERFLOWS = 1e-150
 NEARLY_EXACT = 1e-4
 """Relative uncertainty below which a weight would drown the others."""
 DEPENDENT = 1e-6
@@ -100,8 +99,9 @@ def prepare(account: Account, rows: slice) -> Block:
         active &= ~above | off_scale
         measured, sigma = np.where(active, measured, 0.0), np.where(active, sigma, 1.0)
 
-    sigma = np.where(sigma <= AS_GOOD_AS_EXACT * np.abs(measured), 0.0, sigma)
-    flowing = (active & readings.flow & (measured != 0)).any(axis=1)
+    sigma = np.where(sigma < SQUARE_UNDERFLOWS, 0.0, sigma)
+    # A flow that is exactly nothing does not tell how much the others are.
+    flowing = (active & readings.flow & ((measured != 0) | (sigma > 0))).any(axis=1)
     column = np.ones((len(measured), 1))
     measured = np.concatenate([measured, column], axis=1)
     sigma = np.concatenate([sigma, 0 * column], axis=1)
@@ -187,6 +187,8 @@ def groups(block: Block) -> Iterator[Group | tuple[IntArray, Fault]]:
     Exact readings that cannot hold together come as the fault that says so.
     """
     exact = block.exact
+    if not len(exact):
+        return
     if (exact == exact[0]).all():
         yield _group(block, np.arange(len(exact)))
         return
@@ -227,7 +229,7 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
     soft[:, stiff] = False
     soft[:, dependent] = False
     positive = np.where(soft, block.u, 1.0)
-    weight = np.where(soft, 1 / positive**2, 0.0)
+    weight = np.where(soft, (1 / positive) ** 2, 0.0)
     there = block.active[:, stiff]
     fit = Fit(
         block.forms,
@@ -236,7 +238,7 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
         stiff,
         np.where(there, block.u[:, stiff] ** 2, np.inf),
     )
-    start_weight = np.where(soft, 1 / np.where(soft, u, 1.0) ** 2, 0.0)
+    start_weight = np.where(soft, (1 / np.where(soft, u, 1.0)) ** 2, 0.0)
     start = linear_step(
         slopes,
         right,

@@ -20,6 +20,7 @@ from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.estimate import Estimate, ReadingTable
 from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
+from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
@@ -114,6 +115,9 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             if readings.samples is None:
                 without = without_suspects(outcome, chosen[0])
         out.fill(at, outcome.z, seen, sets, m)
+        if outcome.directions.shape[1]:
+            moved = np.linalg.norm(outcome.directions, axis=1)
+            out.told[at] = moved <= TOUCHED * outcome.natural
         for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
             failed[int(at[row])] = _told_apart(account)
     out.blank(sorted(failed))
@@ -130,6 +134,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         ),
         inconsistent=out.chi_square > out.limit,
         per_mole_of_key=block.active[:, m],
+        told=out.told,
         inflation=out.inflation,
         without_suspects=without,
         failed=failed,
@@ -176,6 +181,7 @@ class _Results:
         self.inflation = np.full(samples, np.nan)
         self.freedom = np.zeros(samples, dtype=np.intp)
         self.sets = np.zeros((samples, m), dtype=np.intp)
+        self.told = np.ones((samples, n), dtype=bool)
 
     def fill(self, at: IntArray, z: FloatArray, seen: Examined, sets: IntArray, m: int) -> None:
         self.z[at] = z
@@ -194,7 +200,7 @@ class _Results:
         """Leave no number where a sample failed after all."""
         for name, array in vars(self).items():
             if rows:
-                array[rows] = 0 if name in ("freedom", "sets") else np.nan
+                array[rows] = 0 if name in ("freedom", "sets", "told") else np.nan
 
 
 def _told_apart(account: Account) -> Fault:
