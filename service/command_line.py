@@ -16,13 +16,13 @@ from typing import Any
 
 import click
 
-from service import logs, server
+from service import __version__, logs, server
 
 _option = functools.partial(click.option, show_envvar=True, show_default=True)
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"]})
-@click.version_option(package_name="molwright", message="%(prog)s %(version)s")
+@click.version_option(__version__, message="%(prog)s %(version)s")
 def main() -> None:
     """Keep the mole account of a plant's reactors, as a REST service.
 
