@@ -410,6 +410,21 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
         "Readings stated as exact (u = 0) cannot all be true. Give at least one of them an"
         " uncertainty, or correct it.",
     ),
+    "not-converged": Entry(
+        "Estimation did not converge",
+        "No account was found that fits the readings, which usually means that some of them cannot"
+        " be true together. Look for a wrong unit, basis or removal.",
+    ),
+    "element-not-named": Entry(
+        "Element not named",
+        "Yields on element basis count carbon unless another element is named, and the key holds no"
+        " carbon. State 'element'.",
+    ),
+    "element-not-in-key": Entry(
+        "Element not in the key",
+        "Yields on element basis count an element of the key, and the key does not hold the one"
+        " named. Name one that it holds.",
+    ),
     "limit-out-of-range": Entry(
         "Limit out of range",
         "A detection limit or the end of an instrument's range must be above zero, and of a"
@@ -441,6 +456,11 @@ _REACTORS: dict[str, Entry] = {
         "Unit of the rate constant",
         "The unit does not fit the orders and the driving quantity of the law. The detail says"
         " the unit expected; check orders and unit.",
+    ),
+    "rate-not-finite": Entry(
+        "Rate without a finite value",
+        "Somewhere on the way the rate law has no finite value. Check orders, constants and their"
+        " units.",
     ),
     "rate-constant-out-of-range": Entry(
         "Rate constant beyond use",

@@ -24,7 +24,7 @@ from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import StreamResultSchema, is_batch, read_conditions, words_of, write_stream
 from schemas.fields import Choice, Map, Number, Text, describe
-from schemas.requests import AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 from schemas.shape import ClosedSchema, child, load
 from schemas.streams import StreamReader, StreamSchema
@@ -114,9 +114,7 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     reader = RequestReader.of(request)
     streams = [(request[side], f"/{side}") for side in ("feed", "outlet")]
     reactions = read_reactions(request, reader, streams)
-    asked = None
-    if reactions is not None:
-        asked = _read_problem(request, reader, reactions)
+    asked = _read_problem(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert asked is not None
     return asked, edge
@@ -125,7 +123,6 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
 def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> ConversionQuestion | None:
-    kept = len(reader.faults)
     key = read_key(request, reader, reactions)
     batch = is_batch(request["feed"]) or is_batch(request["outlet"])
     readings = StreamReader(reader, reactions, batch)
@@ -138,7 +135,7 @@ def _read_problem(
         )
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
-    if len(reader.faults) > kept:
+    if reader.faults:
         return None
     problem = AccountProblem(
         reactions=reactions,
@@ -156,7 +153,7 @@ def _read_problem(
 def _check_yields(yields: Json, reader: RequestReader, reactions: ReactionSet) -> None:
     reader.at(("yields",), "/yields")
     for name in yields.get("per_key", {}):
-        if reactions.find(name) is None:
+        if reactions.find(name) is None and reactions is not NOTHING_KNOWN:
             reader.fault(
                 "unknown-substance",
                 child("/yields/per_key", name),

@@ -333,7 +333,7 @@ class RequestReader:
         if raw.u_rel is not None:
             if raw.u is not None:
                 place = child(pointer, "u_rel")
-                self.fault("conflicting-fields", place, "state 'u' or 'u_rel', not both")
+                self.fault("conflicting-fields", place, "found 'u' and 'u_rel'; state one of them")
                 return None
             if not is_difference_safe(unit):
                 self.fault(

@@ -27,7 +27,7 @@ from schemas.quantities import (
     clip,
     parse_quantity,
 )
-from schemas.shape import ClosedSchema, Message, kind_of, message
+from schemas.shape import ClosedSchema, Message, kind_of, message, reader_of
 
 MAX_SUBSTANCES = 100
 MAX_NAME_LENGTH = 80
@@ -238,8 +238,7 @@ def _bad_name(name: str) -> Message:
 def _each(items: Mapping[Any, Any], field: fields.Field[Any], data: Any) -> dict[Any, Any]:
     done: dict[Any, Any] = {}
     faults: dict[Any, Any] = {}
-    # A strict field judges null itself; the stock ones need the longer way.
-    read = field._deserialize if isinstance(field, StrictField) else field.deserialize
+    read = reader_of(field)
     for name, item in items.items():
         try:
             done[name] = read(item, name, data)
@@ -292,20 +291,21 @@ class OneOf(StrictField):
     def __init__(self, forms: Mapping[str, fields.Field[Any]], **kwargs: Any) -> None:
         super().__init__(**kwargs)
         self.forms = dict(forms)
+        self._readers = {name: reader_of(field) for name, field in forms.items()}
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> Any:
-        forms = self.forms
+        readers = self._readers
         if isinstance(value, dict):
-            for name, field in forms.items():
+            for name, read in readers.items():
                 if name in value:
-                    return field.deserialize(value, attr, data)
-        elif isinstance(value, str) and "string" in forms:
-            return forms["string"].deserialize(value, attr, data)
-        elif isinstance(value, list) and "array" in forms:
-            return forms["array"].deserialize(value, attr, data)
-        if "otherwise" in forms:
-            return forms["otherwise"].deserialize(value, attr, data)
-        raise _wrong_type(f"one of these forms ({', '.join(forms)})", value)
+                    return read(value, attr, data)
+        elif isinstance(value, str) and "string" in readers:
+            return readers["string"](value, attr, data)
+        elif isinstance(value, list) and "array" in readers:
+            return readers["array"](value, attr, data)
+        if "otherwise" in readers:
+            return readers["otherwise"](value, attr, data)
+        raise _wrong_type(f"one of these forms ({', '.join(readers)})", value)
 
     def published(self, convert: Converter) -> Published:
         """Return the alternatives."""

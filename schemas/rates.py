@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -22,7 +23,8 @@ from core.rates.power_law import (
     expected_unit_parts,
 )
 from core.reactions.reaction_set import ReactionSet
-from core.streams.stream import Stream
+from core.streams.known import in_phase
+from core.streams.stream import StreamPhase
 from schemas.edge import Json, RequestReader
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Text, describe
 from schemas.quantities import RawQuantity
@@ -129,7 +131,7 @@ def equilibrium_constant(**kwargs: object) -> OneOf:
 
 
 def read_rate(
-    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, feed: Stream
+    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, phase: StreamPhase
 ) -> PowerLaw | None:
     """Return the rate law of the one reaction of an account; None after a fault.
 
@@ -140,8 +142,10 @@ def read_rate(
         ``equilibrium_constant``.
     pointer : str
         Where it stands.
+    phase : StreamPhase
+        In which the reaction runs.
     """
-    return _RateReader(document, pointer, reader, reactions, feed).read()
+    return _RateReader(document, pointer, reader, reactions, phase).read()
 
 
 @dataclass
@@ -150,18 +154,24 @@ class _RateReader:
     pointer: str
     reader: RequestReader
     reactions: ReactionSet
-    feed: Stream
+    phase: StreamPhase
 
     def __post_init__(self) -> None:
         self.rate: Json = self.document["rate"]
         self.place = child(self.pointer, "rate")
-        self.subject: Subject = ("reactions", self.reactions.reactions[0].id, "rate")
+        reactions = self.reactions.reactions
+        # Without reactions they have been refused, and the rate is read for its own faults.
+        self.reaction = reactions[0] if reactions else None
+        id_ = self.document.get("id", "r1") if self.reaction is None else self.reaction.id
+        self.subject: Subject = ("reactions", id_, "rate")
         self.reader.at(self.subject, self.place)
+        for name in ("driving", "activity", "effectiveness"):
+            self.reader.at((*self.subject, name), child(self.place, name))
 
     def read(self) -> PowerLaw | None:
         kept = len(self.reader.faults)
         orders = self._orders(self.rate, self.place, self.subject)
-        constant = self._constant(self.rate, self.place, self.subject, orders)
+        constant = self._constant(self.rate, self.place, self.subject)
         of = self._of()
         reverse = self._reverse()
         floors = self._floors()
@@ -182,6 +192,8 @@ class _RateReader:
         found = self.reactions.find(name)
         if found is not None:
             return found
+        if self.reaction is None:
+            return None
         self.reader.fault(
             "unknown-substance",
             pointer,
@@ -201,10 +213,12 @@ class _RateReader:
         return orders
 
     def _of(self) -> int | None:
-        nu = self.reactions.nu[0]
         self.reader.at((*self.subject, "of"), child(self.place, "of"))
         if "of" in self.rate:
             return self._index(self.rate["of"], child(self.place, "of"))
+        if self.reaction is None:
+            return None
+        nu = self.reactions.nu[0]
         if np.isin(nu, (-1.0, 0.0, 1.0)).all():
             # Every substance reacts at the same rate, so it matters not whose is given.
             return int(np.flatnonzero(nu)[0])
@@ -217,16 +231,16 @@ class _RateReader:
         return None
 
     def _constant(
-        self, document: Json, pointer: str, subject: Subject, orders: FloatArray
+        self, document: Json, pointer: str, subject: Subject
     ) -> TemperatureDependent | None:
         said = document["constant"]
         place, about = child(pointer, "constant"), (*subject, "constant")
         self.reader.at(about, place)
         if isinstance(said, RawQuantity):
-            value = self._value(said, place, about, orders)
+            value = self._value(said, place, about, document)
             return None if value is None else Constant(value)
         name = "pre_exponential" if "pre_exponential" in said else "constant"
-        value = self._value(said[name], child(place, name), (*about, name), orders)
+        value = self._value(said[name], child(place, name), (*about, name), document)
         energy = self.reader.quantity(
             said["activation_energy"],
             child(place, "activation_energy"),
@@ -245,9 +259,9 @@ class _RateReader:
         return ConstantAt(at.value, value, energy.value)
 
     def _value(
-        self, raw: RawQuantity, pointer: str, subject: Subject, orders: FloatArray
+        self, raw: RawQuantity, pointer: str, subject: Subject, document: Json
     ) -> float | None:
-        driving, total = self.rate["driving"], float(orders.sum())
+        driving, total = self.rate["driving"], math.fsum(document["orders"].values())
         found = self.reader.constant(
             raw,
             pointer,
@@ -263,7 +277,7 @@ class _RateReader:
         said = self.rate.get("reversible")
         place, about = child(self.place, "reversible"), (*self.subject, "reversible")
         if said is None:
-            if self.reactions.reactions[0].reversible:
+            if self.reaction is not None and self.reaction.reversible:
                 self.reader.notes.append(
                     Note(
                         "rate-taken-as-irreversible",
@@ -277,7 +291,7 @@ class _RateReader:
         self.reader.at(about, place)
         if "constant" in said:
             orders = self._orders(said, place, about)
-            constant = self._constant(said, place, about, orders)
+            constant = self._constant(said, place, about)
             return None if constant is None else ReverseConstant(constant, orders)
         equilibrium = self._equilibrium_constant()
         if equilibrium is None:
@@ -297,11 +311,14 @@ class _RateReader:
             )
             return None
         self.reader.at(about, place)
-        total = coefficient_sum(self.reactions.nu[0], self.feed.in_phase)
+        if self.reaction is None:
+            return None
+        inside = in_phase(self.reactions, self.phase)
+        total = coefficient_sum(self.reactions.nu[0], inside)
         kinds: dict[str, EquilibriumKind] = {}
         allowed = {}
         wanted: tuple[EquilibriumKind, ...] = ("pressure", "concentration", "thermodynamic")
-        for kind in wanted[self.feed.phase == "liquid" :]:
+        for kind in wanted[self.phase == "liquid" :]:
             spelt = spell(equilibrium_unit_parts(kind, total))
             kinds[spelt] = kind
             allowed[spelt] = equilibrium_unit_exponents(kind, total)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+import numpy as np
 from marshmallow import fields
 
 from core.dimensions import DIMENSIONS
@@ -89,17 +90,24 @@ class AccountSchema(ClosedSchema):
     )
 
 
+NOTHING_KNOWN = ReactionSet((), (), np.zeros((0, 0)), 0, np.zeros(0))
+"""An account without substances or reactions: those of the request have been refused."""
+
+
 def read_reactions(
     document: Json, reader: RequestReader, streams: Iterable[tuple[Json, str]]
-) -> ReactionSet | None:
+) -> ReactionSet:
     """Return the reactions among the substances that the request names.
+
+    After a fault that is :data:`NOTHING_KNOWN`, so that whatever does not hang
+    on the reactions can still be judged.
 
     Parameters
     ----------
     document : dict
         The request, its shape already judged.
     reader : RequestReader
-        Keeps the faults; with any of them there is no set.
+        Keeps the faults.
     streams : iterable of (dict, str)
         Stream documents and where they stand.
     """
@@ -126,9 +134,9 @@ def read_reactions(
         reactions, notes = build_reaction_set(inputs, declared, names)
     except Refused as refused:
         reader.collect(refused)
-        return None
+        return NOTHING_KNOWN
     reader.notes.extend(notes)
-    return reactions if len(reader.faults) == kept else None
+    return reactions if len(reader.faults) == kept else NOTHING_KNOWN
 
 
 def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
@@ -161,6 +169,8 @@ def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
 def read_key(document: Json, reader: RequestReader, reactions: ReactionSet) -> int:
     """Return the index of the key reactant; -1 after a fault."""
     reader.at(("key",), "/key")
+    if reactions is NOTHING_KNOWN:
+        return -1
     key = document["key"]
     found = reactions.find(key)
     if found is not None:

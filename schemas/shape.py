@@ -8,12 +8,12 @@ tree flattens to one fault per place, each with its JSON Pointer.
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 from typing import Any, ClassVar
 
-from marshmallow import RAISE, Schema, ValidationError
+from marshmallow import RAISE, Schema, ValidationError, fields, missing
 
 
 class Message(str):
@@ -85,6 +85,29 @@ def kind_of(value: object) -> str:
     return "an array" if isinstance(value, list) else "an object"
 
 
+Reader = Callable[[Any, Any, Any], Any]
+"""Reads a value; the name and the object that it stands under come with it."""
+
+
+def reader_of(field: fields.Field[Any]) -> Reader:
+    """Return what reads a value for ``field``; a null too, unless the field is an object's own.
+
+    Marshmallow's own way around a field's judgement, for options that are not
+    set here, takes several times as long as the judgement.
+    """
+    if field.validators or field.pre_load or field.post_load:
+        return field.deserialize
+    if not isinstance(field, fields.Nested):
+        return field._deserialize
+    if field.unknown or field.many:
+        return field.deserialize
+
+    def read(value: Any, _name: Any, _data: Any) -> Any:
+        return field.deserialize(None) if value is None else field.schema.load(value)
+
+    return read
+
+
 class ClosedSchema(Schema):
     """A request object: fields not named are refused, with the nearest known one."""
 
@@ -110,6 +133,63 @@ class ClosedSchema(Schema):
                 "required": message("missing-field", required),
                 "null": message("wrong-type", null),
             }
+
+    @cached_property
+    def _members(self) -> dict[str, tuple[str, fields.Field[Any], Reader]]:
+        """By name in the document: name in what is read, the field, and what reads it."""
+        return {
+            field.data_key or name: (name, field, reader_of(field))
+            for name, field in self.load_fields.items()
+        }
+
+    @cached_property
+    def _required(self) -> list[tuple[str, Message]]:
+        return [
+            (name, field.error_messages["required"])
+            for name, (_, field, _) in self._members.items()
+            if field.required
+        ]
+
+    @cached_property
+    def _defaults(self) -> dict[str, Any]:
+        members = self._members.values()
+        return {
+            name: field.load_default
+            for name, field, _ in members
+            if field.load_default is not missing
+        }
+
+    def load(self, data: Any, **options: Any) -> Any:
+        """Read an object as marshmallow would, in one walk over the members that were sent.
+
+        Marshmallow walks over every field that is declared, most of which are
+        not sent, and allows for hooks that no request here has.
+        """
+        if options or self._hooks:
+            return super().load(data, **options)
+        if not isinstance(data, dict):
+            raise ValidationError({"_schema": [self.error_messages["type"]]})
+        read = self._defaults.copy()
+        faults: dict[Any, Any] = {}
+        members = self._members
+        for sent, value in data.items():
+            member = members.get(sent)
+            if member is None:
+                faults[sent] = [self.error_messages["unknown"]]
+                continue
+            name, field, reader = member
+            try:
+                if value is None:
+                    reader = field.deserialize
+                read[name] = reader(value, sent, data)
+            except ValidationError as error:
+                faults[sent] = error.messages
+        for name, text in self._required:
+            if name not in data:
+                faults[name] = [text]
+        if faults:
+            raise ValidationError(faults)
+        return read
 
 
 def load(schema: Schema, document: object) -> dict[str, Any]:

@@ -13,18 +13,18 @@ from core.mole_account.stoichiometric_table import (
     TableProblem,
 )
 from core.reactions.reaction_set import ReactionSet
-from core.streams.stream import Stream
 from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import (
     StreamResultSchema,
+    is_batch,
     read_feed,
     words_of,
     write_known_stream,
     write_stream,
 )
 from schemas.fields import Choice, List, Map, Number, Quantity, describe
-from schemas.requests import AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 from schemas.shape import ClosedSchema, child, load
 from schemas.streams import StreamSchema
@@ -75,9 +75,7 @@ def read(document: Any) -> tuple[TableProblem, EdgeMap]:
     request = load(_REQUEST, document)
     reader = RequestReader.of(request)
     reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
-    problem, per_key = None, False
-    if reactions is not None:
-        problem, per_key = _read_problem(request, reader, reactions)
+    problem, per_key = _read_problem(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert problem is not None
     return problem, edge.per_mole_of_key() if per_key else edge
@@ -91,8 +89,9 @@ def _read_problem(
     feed = read_feed(request["feed"], "/feed", reader, reactions, key)
     inlet = None if feed is None else feed.stream
     outlet = _read_outlet(request.get("outlet", {}), reader)
-    asked = _read_asked(request, reader, reactions, inlet)
-    if "hold" in request and (inlet is None or not inlet.batch):
+    batch = is_batch(request["feed"])
+    asked = _read_asked(request, reader, reactions, batch)
+    if "hold" in request and not batch:
         reader.fault("field-not-used", "/hold", "a flow holds nothing; state 'amounts', a batch")
     if feed is None or inlet is None:
         return None, False
@@ -119,9 +118,7 @@ def _read_outlet(document: Json, reader: RequestReader) -> OutletConditions:
     return OutletConditions(compressibility=document.get("compressibility"), **stated)
 
 
-def _read_asked(
-    request: Json, reader: RequestReader, reactions: ReactionSet, inlet: Stream | None
-) -> Json:
+def _read_asked(request: Json, reader: RequestReader, reactions: ReactionSet, batch: bool) -> Json:
     conversions, extents = request.get("conversions"), request.get("extents")
     if (conversions is None) == (extents is None):
         found = "neither" if conversions is None else "both"
@@ -139,18 +136,17 @@ def _read_asked(
         return {"conversions": np.array(values)}
     assert extents is not None
     reader.at(("extents",), "/extents")
-    dimension = words_of(inlet is not None and inlet.batch).flow_dimension
+    dimension = words_of(batch).flow_dimension
     ids = [reaction.id for reaction in reactions.reactions]
     row = np.zeros(len(ids))
     for name, raw in extents.items():
         pointer = child("/extents", name)
-        if name not in ids:
+        if name not in ids and reactions is not NOTHING_KNOWN:
             reader.fault(
                 "unknown-reaction", pointer, f"found {name!r}; the reactions are {', '.join(ids)}"
             )
-            continue
         extent = reader.quantity(raw, pointer, ("extents", name), dimension)
-        if extent is not None:
+        if extent is not None and name in ids:
             row[ids.index(name)] = extent.value
     return {"extents": row[None, :]}
 

@@ -486,10 +486,12 @@ class StreamReader:
             found_dimension = found.dimension
             weights = self._weights(name, lumps)
             if found.dimension == "mass_per_amount":
-                if len(weights) != 1:
+                if len(weights) > 1:
                     self.reader.fault(
                         "wrong-dimension", place, "a lump has no molar mass to be counted by"
                     )
+                    continue
+                if not weights:  # refused with the substances
                     continue
                 molar_mass = float(self.reactions.molar_masses[next(iter(weights))])
                 stated = self.reader.places[about]
@@ -582,6 +584,7 @@ class StreamReader:
             share = None if found is None else found.value
         else:
             place = child(pointer, "saturated_at")
+            self.reader.at((*subject, "saturated_at"), place)
             share = self._saturated(entry, place, (*subject, "saturated_at"))
         if share is not None and share >= 1:
             self.reader.fault(

@@ -20,13 +20,14 @@ from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import (
     StreamResultSchema,
+    is_batch,
     read_feed,
     words_of,
     write_known_stream,
 )
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Tagged, Text, describe
 from schemas.rates import read_rate
-from schemas.requests import AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
 from schemas.results import NumberSchema, OpenSchema, TableSchema, envelope, number
 from schemas.shape import ClosedSchema, child, load
 from schemas.streams import StreamSchema
@@ -119,9 +120,7 @@ def read(document: Any) -> tuple[SizingProblem, EdgeMap]:
     request = load(_REQUEST, document)
     reader = RequestReader.of(request)
     reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
-    problem = None
-    if reactions is not None:
-        problem = _read_problem(request, reader, reactions)
+    problem = _read_problem(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert problem is not None
     return problem, edge
@@ -140,6 +139,7 @@ def _read_problem(
             f"found {len(reactions.reactions)}; this release sizes reactors for one reaction",
         )
         return None
+    rate = None
     if isinstance(said, str) or "rate" not in said:
         reader.fault(
             "field-needed",
@@ -147,37 +147,36 @@ def _read_problem(
             "a reactor is sized by the rate of its reaction; write the reaction as an object with"
             " 'equation' and 'rate'",
         )
-        return None
-    if known is None:
-        return None
-    if known.per_mole_of_key:
+    else:
+        phase = request["feed"].get("phase", "gas")
+        rate = read_rate(said, "/reactions/0", reader, reactions, phase)
+    if known is not None and known.per_mole_of_key:
         reader.fault(
             "field-needed",
             "/feed/flow",
             "a size follows from how much flows, which nothing in the feed says; state its flow",
         )
-        return None
-    feed = known.stream
-    kind = request["reactor"]["kind"]
+        known = None
     reader.at(("reactor",), "/reactor")
-    rate = read_rate(said, "/reactions/0", reader, reactions, feed)
+    kind = request["reactor"]["kind"]
     options = {name: value for name, value in request["reactor"].items() if name != "kind"}
     reactor = REACTOR_KINDS[kind](**options)
-    held = feed.phase == "liquid" or options.get("hold") == "volume"
-    target = _read_target(request["target"], reader, reactions, key, feed, held)
-    if rate is None or target is None:
+    feed = None if known is None else known.stream
+    target = _read_target(request, reader, reactions, key, feed)
+    if feed is None or rate is None or target is None:
         return None
     return SizingProblem(reactions, key, feed, rate, np.asarray(target), reactor)
 
 
 def _read_target(
-    said: Json,
+    request: Json,
     reader: RequestReader,
     reactions: ReactionSet,
     key: int,
-    feed: Stream,
-    constant_volume: bool,
+    feed: Stream | None,
 ) -> float | None:
+    """Return the target as a conversion; None after a fault, here or in the feed."""
+    said = request["target"]
     subject: Subject = reader.at(("target",), "/target")
     if "conversion" in said:
         place = "/target/conversion"
@@ -187,7 +186,7 @@ def _read_target(
         return None if found is None else found.value
     name = said["species"]
     substance = reactions.find(name)
-    if substance is None:
+    if substance is None and reactions is not NOTHING_KNOWN:
         reader.fault(
             "unknown-substance",
             "/target/species",
@@ -204,13 +203,17 @@ def _read_target(
         )
         return None
     kind = stated[0]
-    dimension = words_of(feed.batch).flow_dimension if kind == "flow" else TARGET_DIMENSIONS[kind]
+    batch = is_batch(request["feed"])
+    dimension = words_of(batch).flow_dimension if kind == "flow" else TARGET_DIMENSIONS[kind]
     raw = said["yield_" if kind == "yield" else kind]
     place = child("/target", kind)
     found = reader.quantity(raw, place, ("target", kind), dimension, at_least=0)
-    if found is None or not feed.flows[key] > 0 or not reactions.nu[0, key] < 0:
+    if found is None or substance is None or feed is None:
+        return None
+    if not feed.flows[key] > 0 or not reactions.nu[0, key] < 0:
         # What is wrong with the key is told where the problem is computed.
-        return None if found is None else 0.5
+        return 0.5
+    held = feed.phase == "liquid" or request["reactor"].get("hold") == "volume"
     reader.at(("target", "conversion"), place)
     try:
         return conversion_for(
@@ -220,7 +223,7 @@ def _read_target(
             substance,
             kind,
             found.value,
-            constant_volume=constant_volume,
+            constant_volume=held,
             subject=subject,
         )
     except Refused as refused:

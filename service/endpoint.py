@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
 import orjson
@@ -11,7 +10,7 @@ from flask import Blueprint, Response, request
 
 from schemas.answer import Answer
 from schemas.contract import Operation
-from service import logs
+from service import __version__, logs
 from service.body import read_json
 from service.digest import digest
 from service.problem_details import HttpFault
@@ -20,11 +19,6 @@ from service.tables import to_csv
 CSV = "text/csv"
 JSON = "application/json"
 HTML = "text/html"
-
-try:
-    RELEASE = version("molwright")
-except PackageNotFoundError:
-    RELEASE = "0.0.0+tree"
 
 
 def calculation(
@@ -43,7 +37,7 @@ def calculation(
             answered = answer(document)
             if media == CSV and answered.table is not None:
                 return _respond(to_csv(answered.table()).encode(), f"{CSV}; charset=utf-8")
-            return json_response(answered.document(RELEASE, name, of), pretty=pretty)
+            return json_response(answered.document(__version__, name, of), pretty=pretty)
 
         blueprint.add_url_rule(
             operation.path, operation.name, view, methods=["POST"], provide_automatic_options=False

@@ -9,7 +9,8 @@ from flask import Blueprint, Response, request
 from core.problems import CATALOGUE
 from schemas.contract import OPERATIONS, published_text
 from schemas.examples import paste
-from service.endpoint import HTML, JSON, RELEASE, json_response, negotiate, pretty_asked
+from service import __version__
+from service.endpoint import HTML, JSON, json_response, negotiate, pretty_asked
 from service.problem_details import HttpFault
 from service.statuses import STATUSES
 
@@ -24,7 +25,7 @@ def index() -> Response:
         {
             "service": "Molwright",
             "purpose": "the mole account of a plant's reactors",
-            "release": RELEASE,
+            "release": __version__,
             "routes": [
                 {"method": op.method, "path": op.path, "answers": op.summary} for op in OPERATIONS
             ],
@@ -99,4 +100,4 @@ def health() -> Response:
 @blueprint.get("/readyz", provide_automatic_options=False)
 def ready() -> Response:
     """Say that the process can compute: everything it needs is loaded before it listens."""
-    return json_response({"status": "ready", "release": RELEASE})
+    return json_response({"status": "ready", "release": __version__})

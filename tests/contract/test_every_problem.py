@@ -1,0 +1,506 @@
+"""Every code of the catalogue, brought about by a request that has just that fault."""
+
+from __future__ import annotations
+
+import copy
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from core.problems import CATALOGUE
+from schemas.contract import OPERATIONS
+from service.statuses import STATUSES
+from tests.support import SHIFT, assert_refused, changed, post
+
+TABLE, CONVERSION, VOLUME = "stoichiometric-table", "conversion", "volume"
+
+OUTLET = {
+    "phase": "gas",
+    "analysis": {
+        "basis": "mole",
+        "removed": ["H2O"],
+        "values": {"CO": "5.39 %", "CO2": "25.71 %", "H2": "51.62 %", "N2": "15.55 %"},
+    },
+}
+READ: dict[str, Any] = {
+    "reactions": SHIFT["reactions"],
+    "key": "CO",
+    "feed": SHIFT["feed"],
+    "outlet": OUTLET,
+}
+SIZE: dict[str, Any] = {
+    "species": {"A": {"molar_mass": "60 g/mol"}, "R": {"molar_mass": "60 g/mol"}},
+    "reactions": [
+        {
+            "equation": "A -> R",
+            "rate": {
+                "per": "fluid-volume",
+                "driving": "concentration",
+                "orders": {"A": 1},
+                "constant": "0.311 1/min",
+            },
+        }
+    ],
+    "key": "A",
+    "feed": {
+        "phase": "liquid",
+        "concentrations": {"A": "2 kmol/m3"},
+        "volumetric_flow": "10 m3/h",
+    },
+    "reactor": {"kind": "plug-flow"},
+    "target": {"conversion": 0.8},
+}
+GAS_FEED = {
+    "phase": "gas",
+    "temperature": "600 K",
+    "pressure": "2 bar",
+    "flows": {"A": "1 mol/s"},
+}
+CONSTANT_K = {"equilibrium_constant": 2.0}
+REVERSIBLE = changed(
+    SIZE,
+    reactions__0__equation="A <=> R",
+    reactions__0__equilibrium_constant=2.0,
+    reactions__0__rate__reversible={},
+)
+
+
+def table(**places: Any):
+    return TABLE, changed(SHIFT, **places)
+
+
+def conversion(**places: Any):
+    return CONVERSION, changed(READ, **places)
+
+
+def volume(**places: Any):
+    return VOLUME, changed(SIZE, **places)
+
+
+def with_first(document: Any, **rate: Any):
+    made = copy.deepcopy(document)
+    made["reactions"][0]["rate"].update(rate)
+    return VOLUME, made
+
+
+OFFGAS_AND_LIQUOR = {
+    "streams": [
+        {"phase": "gas", "flow": "1 m3/h", "analysis": {"basis": "mole", "values": {"CO": "1 %"}}}
+    ]
+}
+
+CASES: dict[str, tuple[str, Any, str]] = {}
+
+
+def case(code: str, request: tuple[str, Any], place: str) -> None:
+    assert code not in CASES
+    CASES[code] = (*request, place)
+
+
+# -- shape
+case("unknown-field", table(feed__presure="25 bar"), "/feed/presure")
+case("missing-field", table(key=...), "/key")
+case("wrong-type", table(conversions="0.8"), "/conversions")
+case("wrong-length", table(conversions=[]), "/conversions")
+case("not-a-choice", table(feed__phase="plasma"), "/feed/phase")
+case("bad-text", table(key=""), "/key")
+case("not-a-quantity", table(feed__temperature="hot"), "/feed/temperature")
+case("out-of-range", table(feed__compressibility=0), "/feed/compressibility")
+
+# -- quantities
+case("unknown-unit", table(feed__pressure="25 barr"), "/feed/pressure")
+case("wrong-dimension", table(feed__pressure="25 kg"), "/feed/pressure")
+case("unit-not-allowed", table(atmospheric_pressure="0 barg"), "/atmospheric_pressure")
+case(
+    "unit-contradicts-basis",
+    conversion(outlet__analysis__values__CO="5 wt%"),
+    "/outlet/analysis/values/CO",
+)
+case("impossible-value", table(feed__flows__CO="-1 kmol/h"), "/feed/flows/CO")
+case(
+    "relative-uncertainty-of-offset-unit",
+    table(feed__temperature={"value": 347, "unit": "degC", "u_rel": 0.01}),
+    "/feed/temperature/u_rel",
+)
+case(
+    "conflicting-fields",
+    table(feed__flows__CO={"value": 1, "unit": "kmol/h", "u": 0.1, "u_rel": 0.1}),
+    "/feed/flows/CO/u_rel",
+)
+case("field-needed", volume(reactions=["A -> R"]), "/reactions/0/rate")
+case("field-not-used", table(hold="volume"), "/hold")
+
+# -- substances and reactions
+case("formula-not-understood", table(species={"X": {"formula": "H2(O"}}), "/species/X")
+case("unknown-element", table(species={"X": {"formula": "Xx2"}}), "/species/X")
+case("no-standard-atomic-weight", table(species={"X": {"formula": "TcO2"}}), "/species/X")
+case("unknown-substance", table(feed__flows__resin="1 kmol/h"), "/feed/flows/resin")
+case("name-not-usable", table(feed__flows={" CO": "1 kmol/h", "CO": "1 kmol/h"}), "/feed/flows/ CO")
+case(
+    "name-clash",
+    table(feed__flows={"CO": "1 kmol/h", "CO(g)": "1 kmol/h"}),
+    "/feed/flows/CO(g)",
+)
+case(
+    "phase-contradicts",
+    table(reactions=["CO(g) + H2O -> CO2 + H2", "CO(l) + H2O -> CO2 + H2"]),
+    "/reactions/1",
+)
+case(
+    "molar-mass-contradicts-formula",
+    table(species={"CO": {"formula": "CO", "molar_mass": "30 g/mol"}}),
+    "/species/CO",
+)
+case("equation-not-understood", table(reactions=["CO + H2O"]), "/reactions/0")
+case("unbalanced-reaction", table(reactions=["CO + O2 -> CO2"]), "/reactions/0")
+case(
+    "mass-not-conserved",
+    volume(species__R__molar_mass="61 g/mol"),
+    "/reactions/0/equation",
+)
+case("reaction-without-change", table(reactions=["CO + H2O -> H2O + CO"]), "/reactions/0")
+case(
+    "duplicate-reaction-id",
+    table(reactions=[SHIFT["reactions"][0], SHIFT["reactions"][0]]),
+    "/reactions/1/equation",
+)
+case("unknown-reaction", table(conversions=..., extents={"r9": "1 kmol/h"}), "/extents/r9")
+case("unknown-key", table(key="CO3"), "/key")
+case("key-absent", table(feed__flows__CO="0 kmol/h"), "/key")
+case("key-not-fed", conversion(feed__flows__CO=...), "/key")
+case("key-not-consumed", table(key="N2"), "/key")
+
+# -- streams
+case("stream-form", table(feed__flows=...), "/feed")
+case(
+    "duplicate-id",
+    table(
+        feed__flows=...,
+        feed__streams=[
+            {"id": "a", "flows": {"CO": "1 mol/s"}},
+            {"id": "a", "flows": {"H2O": "1 mol/s"}},
+        ],
+    ),
+    "/feed/streams/1/id",
+)
+case("no-flow", table(feed__flows={"CO": "0 mol/s"}), "/feed")
+case(
+    "flow-negative",
+    table(
+        feed__flows=...,
+        feed__flow="100 kmol/h",
+        feed__analysis={
+            "basis": "mole",
+            "values": {"CO": "60 %", "H2O": "50 %"},
+            "balance": "N2",
+        },
+    ),
+    "/feed",
+)
+case(
+    "meter-conditions-missing",
+    table(
+        feed__flows=...,
+        feed__flow="1000 m3/h",
+        feed__analysis={"basis": "mole", "values": {"CO": "40 %", "H2O": "60 %"}},
+    ),
+    "/feed/flow",
+)
+case(
+    "volume-contradicts-conditions",
+    table(
+        feed__flows=...,
+        feed__concentrations={"CO": "1 kmol/m3", "H2O": "1 kmol/m3"},
+        feed__volumetric_flow="10 m3/h",
+    ),
+    "/feed/pressure",
+)
+case(
+    "condition-missing",
+    table(feed__temperature=..., outlet={"temperature": "700 K"}),
+    "/feed/temperature",
+)
+case(
+    "unused-lump",
+    conversion(outlet__analysis__lumps={"CO+N2": {"CO": 1, "N2": 1}}),
+    "/outlet/analysis/lumps/CO+N2",
+)
+case(
+    "removal-residual",
+    conversion(
+        outlet__analysis__removed=[
+            {"species": "H2O", "residual": "60 %"},
+            {"species": "CH4", "residual": "50 %"},
+        ]
+    ),
+    "/outlet/analysis",
+)
+
+
+def saturated(species: str, **stated: Any):
+    conditions = {"temperature": "10 degC", "pressure": "20 bar", **stated}
+    removed = [{"species": species, "saturated_at": conditions}]
+    made = changed(READ, outlet__analysis__removed=removed)
+    made["feed"]["flows"][species] = "10 kmol/h"
+    return CONVERSION, made
+
+
+case("vapour-pressure-missing", saturated("NaCl"), "/outlet/analysis/removed/0/saturated_at")
+case("ambiguous-substance", saturated("C3H6O"), "/outlet/analysis/removed/0/saturated_at")
+case(
+    "outside-correlation",
+    saturated("H2O", temperature="500 degC"),
+    "/outlet/analysis/removed/0/saturated_at",
+)
+LIQUID = changed(
+    READ,
+    feed={"phase": "liquid", "flows": {"CO": "1 mol/s", "H2O": "3 mol/s"}},
+    outlet__phase="liquid",
+)
+case(
+    "liquid-volume-basis",
+    (CONVERSION, changed(LIQUID, outlet__analysis__basis="volume")),
+    "/outlet/analysis",
+)
+case(
+    "liquid-concentration-removal",
+    (
+        CONVERSION,
+        changed(
+            LIQUID,
+            feed__volumetric_flow="1 m3/h",
+            outlet__analysis__basis="concentration",
+            outlet__analysis__values={"CO": "1 mol/l"},
+        ),
+    ),
+    "/outlet/analysis",
+)
+
+# -- the mole account
+case("conversions-or-extents", table(conversions=...), "")
+case(
+    "conversion-not-enough",
+    table(reactions=["CO + H2O <=> CO2 + H2", "CO + 3 H2 <=> CH4 + H2O"]),
+    "/conversions",
+)
+case("conversion-out-of-reach", table(conversions=[0.5, 1.2]), "/conversions/1")
+case("extents-out-of-reach", table(conversions=..., extents={"shift": "500 kmol/h"}), "/extents")
+case(
+    "pressure-follows",
+    table(
+        feed__flows=...,
+        feed__amounts={"CO": "1 mol", "H2O": "1 mol"},
+        outlet={"pressure": "3 bar"},
+    ),
+    "/outlet/pressure",
+)
+case(
+    "phase-vanishes",
+    table(
+        species={
+            "R": {"molar_mass": "60 g/mol", "phase": "solid"},
+            "A": {"molar_mass": "60 g/mol"},
+        },
+        reactions=["A -> R"],
+        key="A",
+        feed__flows={"A": "1 mol/s"},
+        conversions=[1],
+    ),
+    "/feed",
+)
+
+# -- outlet analysis
+case(
+    "under-determined",
+    conversion(outlet__analysis__values={"N2": "10.59 %"}, outlet__analysis__removed=[]),
+    "/outlet",
+)
+case(
+    "exact-readings-conflict",
+    conversion(
+        outlet__analysis__values={
+            "CO": {"value": 5.39, "unit": "%", "u": 0},
+            "CO2": {"value": 35.0, "unit": "%", "u": 0},
+        },
+        feed__flows={
+            name: {"value": flow, "unit": "kmol/h", "u": 0}
+            for name, flow in {"CO": 120, "H2O": 360, "CO2": 60, "H2": 210, "N2": 90}.items()
+        },
+    ),
+    "/outlet/analysis/values/CO2",
+)
+case(
+    "limit-out-of-range",
+    conversion(outlet__analysis__values__CO="<0 %"),
+    "/outlet/analysis/values/CO",
+)
+
+# -- reactors
+case(
+    "one-reaction-only",
+    volume(reactions__0=SIZE["reactions"][0], reactions=[*SIZE["reactions"], "R -> A"]),
+    "/reactions",
+)
+case("feed-does-not-fit-reactor", volume(reactor__kind="batch"), "/feed")
+case(
+    "rate-of-needed",
+    volume(species__R__molar_mass="30 g/mol", reactions__0__equation="A -> 2 R"),
+    "/reactions/0/rate",
+)
+case(
+    "rate-of-absent-substance",
+    volume(feed__concentrations__N2="1 mol/l", reactions__0__rate__of="N2"),
+    "/reactions/0/rate/of",
+)
+case(
+    "rate-constant-unit",
+    volume(reactions__0__rate__constant="0.3 m3/(kmol min)"),
+    "/reactions/0/rate/constant",
+)
+case(
+    "rate-constant-out-of-range",
+    volume(
+        feed__temperature="300 K",
+        reactions__0__rate__constant={
+            "pre_exponential": "1 1/s",
+            "activation_energy": "9000 kJ/mol",
+        },
+    ),
+    "/reactions/0/rate/constant",
+)
+case(
+    "equilibrium-constant-unit",
+    (VOLUME, changed(REVERSIBLE, reactions__0__equilibrium_constant="2 bar")),
+    "/reactions/0/equilibrium_constant",
+)
+case(
+    "equilibrium-constant-does-not-fit",
+    (
+        VOLUME,
+        changed(
+            REVERSIBLE,
+            species__R__molar_mass="30 g/mol",
+            reactions__0__equation="A <=> 2 R",
+            reactions__0__rate__of="A",
+        ),
+    ),
+    "/reactions/0/equilibrium_constant",
+)
+case(
+    "driving-needs-gas",
+    volume(
+        reactions__0__rate__driving="partial-pressure",
+        reactions__0__rate__constant="1 mol/(m3 s bar)",
+    ),
+    "/reactions/0/rate/driving",
+)
+case(
+    "order-outside-phase",
+    volume(
+        species__R__phase="gas",
+        reactions__0__rate__orders={"A": 1, "R": 0.5},
+        reactions__0__rate__constant="1 (m3/kmol)^0.5/min",
+    ),
+    "/reactions/0/rate/orders/R",
+)
+case(
+    "floor-without-negative-order",
+    volume(reactions__0__rate__floor={"A": "1 mol/m3"}),
+    "/reactions/0/rate/floor/A",
+)
+case(
+    "negative-order-needs-floor",
+    volume(
+        reactions__0__rate__orders={"A": 1, "R": -1},
+        reactions__0__rate__constant="1 mol/(m3 s)",
+    ),
+    "/reactions/0/rate/orders/R",
+)
+case(
+    "reaction-does-not-start",
+    volume(
+        reactions__0__rate__orders={"A": 1, "R": 1},
+        reactions__0__rate__constant="1 m3/(kmol min)",
+    ),
+    "/feed",
+)
+case("target-form", volume(target={"species": "R"}), "/target")
+case(
+    "target-does-not-move",
+    volume(feed__concentrations__N2="1 mol/l", target={"species": "N2", "mole_fraction": 0.1}),
+    "/target",
+)
+case(
+    "target-not-defined",
+    volume(species__R__phase="gas", target={"species": "R", "concentration": "1 mol/l"}),
+    "/target",
+)
+case(
+    "target-out-of-reach",
+    (VOLUME, changed(REVERSIBLE, target__conversion=0.9)),
+    "/target/conversion",
+)
+
+ELSEWHERE = {
+    "not-json": "tests/service/test_bodies_and_forms.py",
+    "too-deep": "tests/service/test_bodies_and_forms.py",
+    "duplicate-name": "tests/service/test_bodies_and_forms.py",
+    "document-breaks-schema": "tests/service/test_bodies_and_forms.py",
+    "unknown-parameter": "tests/service/test_bodies_and_forms.py",
+    "no-such-route": "tests/service/test_bodies_and_forms.py",
+    "method-not-allowed": "tests/service/test_bodies_and_forms.py",
+    "not-acceptable": "tests/service/test_bodies_and_forms.py",
+    "unsupported-media-type": "tests/service/test_bodies_and_forms.py",
+    "body-too-large": "tests/service/test_bodies_and_forms.py",
+    "internal-error": "tests/service/test_bodies_and_forms.py",
+    "malformed-http": "tests/live/test_server.py",
+    "request-line-too-long": "tests/live/test_server.py",
+    "header-too-large": "tests/live/test_server.py",
+    "unsupported-transfer-coding": "tests/live/test_server.py",
+    "expectation-failed": "tests/live/test_server.py",
+    "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
+}
+"""Codes that no JSON request to a calculation brings about, and the test that does."""
+
+
+@pytest.mark.parametrize("code", sorted(CASES))
+def test_the_fault_is_named_with_its_place(client, code):
+    operation, request, place = CASES[code]
+    response = post(client, operation, request)
+    fault = assert_refused(response, STATUSES[code], code, place)
+    assert len(fault["detail"]) > 30
+    assert "{" not in fault["detail"]
+
+
+def test_several_faults_of_meaning_are_told_together(client):
+    request = changed(
+        SHIFT, feed__flows__CO="1 barr", feed__pressure="-1 bar", key="XX", conversions=["1 kg"]
+    )
+    response = post(client, TABLE, request)
+    document = response.get_json()
+    assert document["type"] == "/problems/cannot-be-computed"
+    for code, place in (
+        ("unknown-unit", "/feed/flows/CO"),
+        ("impossible-value", "/feed/pressure"),
+        ("unknown-key", "/key"),
+        ("wrong-dimension", "/conversions/0"),
+    ):
+        assert_refused(response, 422, code, place)
+
+
+def test_every_code_is_brought_about_somewhere():
+    together = {"cannot-be-computed"}
+    assert set(CASES) | set(ELSEWHERE) | together == set(CATALOGUE)
+    for code, test in ELSEWHERE.items():
+        assert code in Path(test).read_text(), (code, test)
+
+
+def test_the_contract_offers_every_status_that_a_calculation_answers_with():
+    from tests.support import contract
+
+    for op in OPERATIONS:
+        if op.request is None:
+            continue
+        offered = contract()["paths"][op.path]["post"]["responses"]
+        assert set(offered) == {"200", "400", "406", "413", "415", "422"}

@@ -1,0 +1,71 @@
+"""The packaged examples: they obey the contract, they run, and they answer as packaged."""
+
+import json
+
+import pytest
+
+from schemas.examples import EXAMPLES, paste
+from service.replay import answers
+from tests.support import answer_validator, post, request_validator
+
+
+def alike(found, packaged, place=""):
+    """Hold two documents against each other: structure and words equal, numbers to 1e-9."""
+    if isinstance(packaged, dict):
+        assert isinstance(found, dict), place
+        assert list(found) == list(packaged), place
+        for name, inner in packaged.items():
+            alike(found[name], inner, f"{place}/{name}")
+    elif isinstance(packaged, list):
+        assert len(found) == len(packaged), place
+        for i, inner in enumerate(packaged):
+            alike(found[i], inner, f"{place}/{i}")
+    elif isinstance(packaged, float):
+        # Linear algebra rounds differently from processor to processor.
+        assert found == pytest.approx(packaged, rel=1e-9, abs=1e-6), place
+    else:
+        assert found == packaged, place
+
+
+@pytest.mark.parametrize("example", EXAMPLES, ids=lambda example: example.name)
+def test_an_example_obeys_the_contract_and_answers_as_packaged(client, example):
+    assert list(request_validator(example.operation).iter_errors(example.request)) == []
+    response = post(client, example.operation, example.request)
+    assert response.status_code == 200
+    packaged = example.answer()
+    assert list(answer_validator(example.operation, 200).iter_errors(packaged)) == []
+    found = response.get_json()
+    assert found["provenance"]["digest"] == packaged["provenance"]["digest"]
+    found["provenance"]["release"] = packaged["provenance"]["release"]
+    alike(found, packaged)
+
+
+def test_the_examples_can_be_answered_again():
+    assert {example.name for example, _ in answers()} == {example.name for example in EXAMPLES}
+
+
+def test_every_calculation_has_an_example():
+    assert {example.operation for example in EXAMPLES} == {
+        "stoichiometric-table",
+        "conversion",
+        "volume",
+    }
+
+
+def test_every_reactor_kind_has_an_example_and_a_schema():
+    from core.reactors.kinds import REACTOR_KINDS
+    from schemas.volume import REACTOR_SCHEMAS
+
+    assert set(REACTOR_KINDS) == set(REACTOR_SCHEMAS)
+    shown = {e.request["reactor"]["kind"] for e in EXAMPLES if e.operation == "volume"}
+    assert shown == set(REACTOR_KINDS)
+
+
+def test_what_is_pasted_runs(client):
+    for command in paste("").split("# ")[1:]:
+        path = command.split("'")[1]
+        body = command.split("-d '")[1].rsplit("'", 1)[0]
+        assert "'" not in body
+        response = client.post(path, data=body, headers={"Content-Type": "application/json"})
+        assert response.status_code == 200
+        assert json.loads(response.get_data())["result"]
