@@ -8,7 +8,7 @@ constraints that :mod:`schemas.contract` writes into the JSON Schema.
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import replace
 from functools import lru_cache
 from typing import Any
@@ -27,7 +27,7 @@ from schemas.quantities import (
     clip,
     parse_quantity,
 )
-from schemas.shape import ClosedSchema, Message, kind_of, message, reader_of
+from schemas.shape import ClosedSchema, Message, Reader, kind_of, message, reader_of
 
 MAX_SUBSTANCES = 100
 MAX_NAME_LENGTH = 80
@@ -155,6 +155,7 @@ class List(StrictField):
     ) -> None:
         super().__init__(**kwargs)
         self.each, self.at_least, self.at_most = each, at_least, at_most
+        self._read = reader_of(each)
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> list[Any]:
         if not isinstance(value, list):
@@ -166,7 +167,7 @@ class List(StrictField):
                     f"found {len(value)} entries; allowed: {self.at_least} to {self.at_most}",
                 )
             )
-        return list(_each(dict(enumerate(value)), self.each, value).values())
+        return list(_each(enumerate(value), self._read, value).values())
 
     def published(self, convert: Converter) -> Published:
         """Return the array and what it holds."""
@@ -195,6 +196,7 @@ class Map(StrictField):
     ) -> None:
         super().__init__(**kwargs)
         self.each, self.at_least, self.at_most = each, at_least, at_most
+        self._read = reader_of(each)
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> dict[str, Any]:
         if not isinstance(value, dict):
@@ -206,10 +208,10 @@ class Map(StrictField):
                     f"found {len(value)} members; allowed: {self.at_least} to {self.at_most}",
                 )
             )
-        bad = {name: [_bad_name(name)] for name in value if not _good_name(name)}
-        if bad:
+        if not all(map(_good_name, value)):
+            bad = {name: [_bad_name(name)] for name in value if not _good_name(name)}
             raise ValidationError(bad)
-        return _each(value, self.each, value)
+        return _each(value.items(), self._read, value)
 
     def published(self, convert: Converter) -> Published:
         """Return the object, its names and what stands under them."""
@@ -235,11 +237,10 @@ def _bad_name(name: str) -> Message:
     )
 
 
-def _each(items: Mapping[Any, Any], field: fields.Field[Any], data: Any) -> dict[Any, Any]:
+def _each(items: Iterable[tuple[Any, Any]], read: Reader, data: Any) -> dict[Any, Any]:
     done: dict[Any, Any] = {}
     faults: dict[Any, Any] = {}
-    read = reader_of(field)
-    for name, item in items.items():
+    for name, item in items:
         try:
             done[name] = read(item, name, data)
         except ValidationError as error:

@@ -17,7 +17,7 @@ from marshmallow import ValidationError
 from schemas.shape import message
 
 NUMBER_PATTERN = r"[+-]?(?:[0-9]{1,20}(?:\.[0-9]{0,20})?|\.[0-9]{1,20})(?:[eE][+-]?[0-9]{1,2})?"
-UNIT_PATTERN = r"(?:[ ][^\x00-\x1f]{1,40}|[^\x00-\x20.0-9eE+][^\x00-\x1f]{0,39})?"
+UNIT_PATTERN = r"(?:[ ][^\x00-\x1f]{1,40}|[^\x00-\x20.,0-9eE+][^\x00-\x1f]{0,39})?"
 QUANTITY_PATTERN = f"^{NUMBER_PATTERN}{UNIT_PATTERN}$"
 READING_PATTERN = f"^[<>]?[ ]?{NUMBER_PATTERN}{UNIT_PATTERN}$"
 LARGEST = 1e15

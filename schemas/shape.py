@@ -120,6 +120,7 @@ class ClosedSchema(Schema):
 
     def __init__(self, **kwargs: Any) -> None:
         super().__init__(**kwargs)
+        self._hooked = any(self._hooks.values())
         names = tuple(field.data_key or name for name, field in self.fields.items())
         self.error_messages = {
             "unknown": message("unknown-field", "", names),
@@ -138,7 +139,7 @@ class ClosedSchema(Schema):
     def _members(self) -> dict[str, tuple[str, fields.Field[Any], Reader]]:
         """By name in the document: name in what is read, the field, and what reads it."""
         return {
-            field.data_key or name: (name, field, reader_of(field))
+            field.data_key or name: (field.attribute or name, field, reader_of(field))
             for name, field in self.load_fields.items()
         }
 
@@ -165,7 +166,7 @@ class ClosedSchema(Schema):
         Marshmallow walks over every field that is declared, most of which are
         not sent, and allows for hooks that no request here has.
         """
-        if options or self._hooks:
+        if options or self._hooked:
             return super().load(data, **options)
         if not isinstance(data, dict):
             raise ValidationError({"_schema": [self.error_messages["type"]]})
