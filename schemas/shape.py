@@ -144,7 +144,7 @@ class ClosedSchema(Schema):
         }
 
     @cached_property
-    def _required(self) -> list[tuple[str, Message]]:
+    def _required(self) -> list[tuple[str, Any]]:
         return [
             (name, field.error_messages["required"])
             for name, (_, field, _) in self._members.items()
