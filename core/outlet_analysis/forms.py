@@ -46,6 +46,16 @@ class Evaluation:
         """Return the evaluation of the samples marked."""
         return Evaluation(self.base[rows], self.product[rows], self.value[rows], self.inside[rows])
 
+    def replacing(self, rows: BoolArray, other: Evaluation) -> Evaluation:
+        """Return the evaluation with the samples marked taken from ``other``."""
+        marked = rows[:, None]
+        return Evaluation(
+            np.where(marked, other.base, self.base),
+            np.where(marked, other.product, self.product),
+            np.where(marked, other.value, self.value),
+            np.where(rows, other.inside, self.inside),
+        )
+
 
 @dataclass(frozen=True, eq=False)
 class Forms:

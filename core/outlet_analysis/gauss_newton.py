@@ -11,9 +11,9 @@ step solves
 with D of the compliances, so that in the end y_c - h_c = -D lambda.
 
 Source of the method: Gauss-Newton with Lagrange multipliers, J. Nocedal,
-S. J. Wright, Numerical Optimization, 2nd ed., Springer, 2006, ch. 10 and 18;
-the step is shortened on their l1 merit function (section 18.3),
-which must not rise.
+S. J. Wright, Numerical Optimization, 2nd ed., Springer, 2006, ch. 10 and 18.
+A step that does not lower their l1 merit function (section 18.3) enough, or
+leaves the bases' domain, is damped as by D. W. Marquardt, J. SIAM 11 (1963) 431.
 """
 
 from __future__ import annotations
@@ -29,14 +29,18 @@ from core.outlet_analysis.forms import Evaluation, Forms
 
 IntArray: TypeAlias = NDArray[np.intp]
 
-MOST_STEPS = 60
-MOST_HALVINGS = 25
+MOST_STEPS = 100
 SMALL_DECREMENT = 1e-10
 """Square of the last step in units of the standard uncertainties of the unknowns."""
 SMALL_STEP = 1e-7
 """Last step, relative to the natural size of the unknowns, where equations must be met."""
 ROUNDING_STEP = 1e-13
 """A step that rounding alone can make, relative."""
+SUFFICIENT = 0.2
+"""Share of its first-order fall that the merit must fall by, or the step is damped."""
+ROUNDING = 1e-11
+LEAST_DAMPING = 1e-3
+MOST_DAMPING = 1e8
 ROUNDING_GAP = 1e-9
 SINGULAR = 1e13
 """Inflation of a variance beyond which double precision cannot tell unknowns apart."""
@@ -159,15 +163,19 @@ def solve_stack(matrices: FloatArray, right: FloatArray) -> FloatArray:
 
 
 def _system(
-    h: FloatArray, a: FloatArray, compliance: FloatArray, natural: FloatArray, ridge: float
+    h: FloatArray,
+    a: FloatArray,
+    compliance: FloatArray,
+    natural: FloatArray,
+    damping: FloatArray | float,
 ) -> _System:
     diagonal = h.diagonal(axis1=1, axis2=2)
     seen = diagonal > 0
     size = np.where(seen, 1 / np.sqrt(np.where(seen, diagonal, 1.0)), natural)
     n, c = h.shape[-1], a.shape[1]
     scaled = h * size[:, :, None] * size[:, None, :]
-    if ridge:
-        scaled[:, range(n), range(n)] += ridge
+    if np.any(damping):
+        scaled[:, range(n), range(n)] += np.asarray(damping)[..., None]
     if not c:
         return _System(scaled, size, np.empty((len(h), 0)))
     rows = a * size[:, None, :]
@@ -221,10 +229,11 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     converged = np.zeros(len(z_all), dtype=bool)
     rows = np.arange(len(z_all))
     z, sizes = z_all, natural
+    damping = np.zeros(len(z_all))
     found = fit.forms.at(z)
     for _ in range(MOST_STEPS):
         h, g, a = _matrices(fit, found)
-        system = _system(h, a, fit.compliance, sizes, 0.0)
+        system = _system(h, a, fit.compliance, sizes, damping)
         n, c = h.shape[-1], a.shape[1]
         gap = fit.measured[:, fit.stiff] - found.value[:, fit.stiff]
         right = system.size * g
@@ -237,13 +246,34 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
             step = np.where(sound[:, None], step, 0.0)
         decrement = ((h @ step[:, :, None])[:, :, 0] * step).sum(axis=-1)
         relative = (np.abs(step) / sizes).max(axis=-1)
-        multipliers = solved[:, n:] / system.gauge if c else solved[:, n:]
-        z, found, moved = _shortened(fit, z, found, step, multipliers)
+        trial = z + step
+        tried = fit.forms.at(trial)
+        # What the merit falls by along the step, at first order.
+        gain = (g * step).sum(axis=-1)
+        multipliers = None
+        if c:
+            multipliers = solved[:, n:] / system.gauge
+            gain = gain + _stiff_gain(fit, multipliers, gap, (a @ step[:, :, None])[:, :, 0])
+        before = _merit(fit, found, multipliers)
+        after = _merit(fit, tried, multipliers)
+        enough = before - SUFFICIENT * np.maximum(gain, 0.0) + ROUNDING * (1 + before)
+        better: BoolArray = np.asarray(tried.inside & sound & (after <= enough))
         settled = decrement < SMALL_DECREMENT
         if c:
             settled = settled & (relative < SMALL_STEP)
-        done: BoolArray = np.asarray((settled | (relative < ROUNDING_STEP)) & moved & sound)
-        stopped: BoolArray = np.asarray(done | ~moved | ~sound)
+        settled = settled | (relative < ROUNDING_STEP)
+        plain = damping == 0
+        done: BoolArray = np.asarray(settled & plain & sound)
+        if better.all():
+            z, found = trial, tried
+        else:
+            z, found = np.where(better[:, None], trial, z), tried.replacing(~better, found)
+        if damping.any() or not better.all():
+            damping = np.where(better, damping / 8, np.maximum(8 * damping, LEAST_DAMPING))
+            # A damped step that has come to rest is looked at once more without damping.
+            rest = ~sound | (damping < LEAST_DAMPING / 8) | (settled & ~plain)
+            damping = np.where(rest, 0.0, damping)
+        stopped: BoolArray = np.asarray(done | ~sound | (damping > MOST_DAMPING))
         if not stopped.any():
             continue
         z_all[rows] = z
@@ -252,51 +282,45 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
             return Solution(z_all, converged)
         going = ~stopped
         rows, z, sizes, found = rows[going], z[going], sizes[going], found.where(going)
+        damping = damping[going]
         fit = fit.samples(going)
     z_all[rows] = z
     return Solution(z_all, converged)
 
 
-def _shortened(
-    fit: Fit,
-    z: FloatArray,
-    found: Evaluation,
-    step: FloatArray,
-    multipliers: FloatArray,
-) -> tuple[FloatArray, Evaluation, BoolArray]:
-    """Take the step, halved per sample until the bases are positive and the merit falls."""
-    hard = len(fit.stiff) > 0
-    if hard:
-        exact = fit.compliance == 0
-        there = np.isfinite(fit.compliance) & ~exact
-        # Below what rounding leaves of a residual its square says nothing.
-        soft = fit.compliance + (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
-        stiffness = np.where(there, 0.5 / np.where(there, soft, 1.0), 0.0)
-        penalty = np.where(
-            exact, 2 * np.abs(np.where(np.isfinite(multipliers), multipliers, 0.0)), 0.0
-        )
+def _stiffness(fit: Fit) -> FloatArray:
+    """Weights of the nearly exact readings in the merit, shape (N, c); 0 of the others.
 
-    def merit(of: Evaluation) -> FloatArray:
-        residual = fit.measured - of.value
-        total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
-        if hard:
-            gap = residual[:, fit.stiff]
-            total = total + (penalty * np.abs(gap) + stiffness * gap * gap).sum(axis=-1)
-        return total
+    Below what rounding leaves of a residual its square says nothing.
+    """
+    near = np.isfinite(fit.compliance) & (fit.compliance > 0)
+    soft = fit.compliance + (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
+    return np.where(near, 1 / np.where(near, soft, 1.0), 0.0)
 
-    before = merit(found)
-    length = np.ones(len(z))
-    trial = z + step
-    tried = fit.forms.at(trial)
-    for _ in range(MOST_HALVINGS):
-        good = tried.inside & (merit(tried) <= before + 1e-9 * (1 + before))
-        if good.all():
-            return trial, tried, good
-        length = np.where(good, length, 0.5 * length)
-        trial = z + length[:, None] * step
-        tried = fit.forms.at(trial)
-    moved = tried.inside
-    return np.where(moved[:, None], trial, z), tried, moved
+
+def _penalty(fit: Fit, multipliers: FloatArray) -> FloatArray:
+    """Weights of the exact readings in the merit, shape (N, c); 0 of the others."""
+    usable = (fit.compliance == 0) & np.isfinite(multipliers)
+    return np.where(usable, 2 * np.abs(np.where(usable, multipliers, 0.0)), 0.0)
+
+
+def _merit(fit: Fit, of: Evaluation, multipliers: FloatArray | None) -> FloatArray:
+    """Half the weighted squares, and the misses of the exact readings, shape (N,)."""
+    residual = fit.measured - of.value
+    total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
+    if multipliers is not None:
+        gap = np.abs(residual[:, fit.stiff])
+        hard = (_penalty(fit, multipliers) + 0.5 * _stiffness(fit) * gap) * gap
+        total = total + hard.sum(axis=-1)
+    return total
+
+
+def _stiff_gain(
+    fit: Fit, multipliers: FloatArray, gap: FloatArray, moved: FloatArray
+) -> FloatArray:
+    """First-order fall of the merit of the stiff readings, whose values move by ``moved``."""
+    exact = _penalty(fit, multipliers) * np.abs(gap)
+    return np.asarray((exact + _stiffness(fit) * gap * moved).sum(axis=-1))
 
 
 def linear_step(

@@ -101,7 +101,8 @@ def examine(
     scale = u * np.sqrt(np.where(testable, redundancy, 1.0))
     standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
     chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
-    freedom = np.rint(redundancy.sum(axis=1)).astype(np.intp)
+    # A singular sample has no number here; it is refused for its inflation.
+    freedom = np.rint(np.nan_to_num(redundancy.sum(axis=1))).astype(np.intp)
     limit_of = chdtri(np.arange(1, fit.measured.shape[1] + 1), LEVEL)
     limit = np.where(freedom > 0, limit_of[freedom - 1], np.nan)
     tests = testable.sum(axis=1)

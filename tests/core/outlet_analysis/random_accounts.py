@@ -6,7 +6,8 @@ over flows, for holding the forms of the core against.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
+from fractions import Fraction
 
 import numpy as np
 
@@ -38,7 +39,14 @@ def random_reactions(rng: np.random.Generator, substances: int, reactions: int) 
     names = [f"S{i}" for i in range(substances)]
     return ReactionSet(
         tuple(Substance(n, float(m)) for n, m in zip(names, masses, strict=True)),
-        tuple(Reaction(f"r{j}", {}, False) for j in range(reactions)),
+        tuple(
+            Reaction(
+                f"r{j}",
+                {n: Fraction(c) for n, c in zip(names, row.tolist(), strict=True) if c},
+                False,
+            )
+            for j, row in enumerate(nu)
+        ),
         nu,
         reactions,
         masses,
@@ -166,7 +174,7 @@ def _metered(
     outlet: bool = False,
 ) -> MeteredStream:
     def named(*subject: str | int) -> Measurement:
-        return replace(blank, subject=(side, *subject))
+        return blank._replace(subject=(side, *subject))
 
     every = [int(i) for i in present]
     basis = str(rng.choice(["mole", "mass", "concentration", "mass-concentration"]))
