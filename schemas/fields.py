@@ -9,7 +9,6 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import replace
 from functools import lru_cache
 from typing import Any
 
@@ -375,7 +374,7 @@ def _limit_quantity(loaded: dict[str, Any]) -> RawQuantity:
     if len(loaded) != 1:
         raise ValidationError(message("not-a-quantity", "state 'below' or 'above', not both"))
     bound, limit = next(iter(loaded.items()))
-    said: RawQuantity = replace(limit, bound=bound)
+    said: RawQuantity = limit._replace(bound=bound)
     return said
 
 

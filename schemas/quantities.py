@@ -8,9 +8,8 @@ The second (:mod:`schemas.edge`) gives it a dimension and SI values.
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
 from functools import lru_cache
-from typing import Literal
+from typing import Literal, NamedTuple
 
 from marshmallow import ValidationError
 
@@ -30,8 +29,7 @@ _READING = re.compile(f"([<>]?)[ ]?({NUMBER_PATTERN})({UNIT_PATTERN})")
 Bound = Literal["below", "above"]
 
 
-@dataclass(frozen=True, slots=True)
-class RawQuantity:
+class RawQuantity(NamedTuple):
     """A quantity of the request, its unit not yet looked up.
 
     ``u`` is in the value's own unit unless ``u_unit`` says otherwise; ``bound``

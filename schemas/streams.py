@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Collection, Iterable, Iterator, Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from typing import Any
 
 from marshmallow import fields
@@ -495,9 +495,8 @@ class StreamReader:
                     continue
                 molar_mass = float(self.reactions.molar_masses[next(iter(weights))])
                 stated = self.reader.places[about]
-                self.reader.places[about] = replace(stated, per=molar_mass)
-                found = replace(
-                    found,
+                self.reader.places[about] = stated._replace(per=molar_mass)
+                found = found._replace(
                     value=found.value / molar_mass,
                     u=None if found.u is None else found.u / molar_mass,
                 )

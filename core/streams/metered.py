@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Literal
+from typing import Literal, NamedTuple
 
 from core.errors import Subject
 from core.streams.stream import StreamPhase
@@ -21,9 +21,11 @@ FlowKind = Literal["amount", "mass", "volume"]
 """mol/s, kg/s, or m3/s at the meter's own conditions."""
 
 
-@dataclass(frozen=True)
-class Measurement:
+class Measurement(NamedTuple):
     """One reading, SI.
+
+    A tuple: readings come in large numbers, and a frozen dataclass takes three
+    times as long to make.
 
     Attributes
     ----------
