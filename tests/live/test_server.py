@@ -190,7 +190,7 @@ def test_slow_clients_do_not_keep_good_ones_waiting(start_server):
             for sock in slow:
                 if sock not in silent:
                     sock.sendall(b" ")
-    assert max(took) < 1
+    assert max(took) < 3
 
 
 @pytest.mark.parametrize(
@@ -203,7 +203,7 @@ def test_a_client_that_does_not_hang_up_holds_up_nobody(start_server, data):
         time.sleep(0.2)
         began = time.monotonic()
         assert server.get("/healthz").status == 200
-        assert time.monotonic() - began < 1
+        assert time.monotonic() - began < 1.5
 
 
 def test_many_clients_at_once_are_all_answered(server):
