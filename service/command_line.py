@@ -10,7 +10,6 @@ os.environ["OPENBLAS_NUM_THREADS"] = os.environ["OMP_NUM_THREADS"] = "1"
 
 import functools
 import itertools
-import sys
 from pathlib import Path
 from typing import Any
 
@@ -80,10 +79,10 @@ def serve(**chosen: Any) -> None:
 
 def _greet(address: str) -> None:
     logs.logger().info("listening", address=address)
-    if sys.stderr.isatty():  # somebody is looking
-        from schemas.examples import paste
+    # On standard error, for whoever looks; the log has standard output to itself.
+    from schemas.examples import paste
 
-        click.echo(f"\nMolwright listens on {address}. Try:\n\n{paste(address)}", err=True)
+    click.echo(f"\nMolwright listens on {address}. Try:\n\n{paste(address)}", err=True)
 
 
 @main.command()

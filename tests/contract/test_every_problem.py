@@ -460,6 +460,15 @@ ELSEWHERE = {
     "unsupported-transfer-coding": "tests/live/test_server.py",
     "expectation-failed": "tests/live/test_server.py",
     "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
+    "not-converged": "tests/core/outlet_analysis/test_solving.py",
+    "rate-not-finite": "tests/core/reactors/test_sizing_refusals.py",
+    "removed-substance-read": "tests/core/outlet_analysis/test_estimate_single.py",
+    "uncertainty-out-of-range": "tests/core/outlet_analysis/test_estimate_single.py",
+    "liquid-volume-of-substance": "tests/core/outlet_analysis/test_estimate_single.py",
+    "molar-mass-not-positive": "tests/core/substances/test_formula.py",
+    "root-not-bracketed": "tests/core/numerics/test_roots.py",
+    "root-not-converged": "tests/core/numerics/test_roots.py",
+    "integral-not-converged": "tests/core/numerics/test_quadrature.py",
 }
 """Codes that no JSON request to a calculation brings about, and the test that does."""
 
