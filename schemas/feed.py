@@ -119,13 +119,13 @@ def read_conditions(
 
 
 def _has_uncertainty(document: Json) -> bool:
-    streams = document.get("streams", (document,))
-    return any(
-        raw.u is not None or raw.u_rel is not None
-        for stream in streams
-        for form in ("flows", "amounts", "concentrations")
-        for raw in stream.get(form, {}).values()
-    )
+    for stream in document.get("streams", (document,)):
+        for form in ("flows", "amounts", "concentrations"):
+            if form in stream:
+                for raw in stream[form].values():
+                    if raw.u is not None or raw.u_rel is not None:
+                        return True
+    return False
 
 
 class SpeciesFlowSchema(OpenSchema):

@@ -191,10 +191,8 @@ class StreamReader:
             return None
         kept = len(reader.faults)
         form = self._form(document, pointer, required)
-        conditions = {
-            name: self.condition(document, name, pointer, subject)
-            for name in ("temperature", "pressure")
-        }
+        temperature = self.condition(document, "temperature", pointer, subject)
+        pressure = self.condition(document, "pressure", pointer, subject)
         analysis = None
         if "analysis" in document:
             analysis = self._analysis(
@@ -208,8 +206,8 @@ class StreamReader:
             subject=subject,
             flows=tuple(self._flows(document, pointer, subject, phase, form)),
             analysis=analysis,
-            temperature=conditions["temperature"],
-            pressure=conditions["pressure"],
+            temperature=temperature,
+            pressure=pressure,
             compressibility=document.get("compressibility", 1.0),
             density=self.density(document, pointer, subject, phase),
         )
@@ -292,8 +290,8 @@ class StreamReader:
             )
 
     def _present(self, document: Json, analysis: Analysis | None) -> frozenset[int]:
-        names = set(document.get("flows", ())) | set(document.get("amounts", ()))
-        present = {i for i in map(self.reactions.find, names) if i is not None}
+        named = [*document.get("flows", ()), *document.get("amounts", ())]
+        present = {i for i in map(self.reactions.find, named) if i is not None}
         if analysis is not None:
             for component in analysis.components:
                 present.update(component.weights)

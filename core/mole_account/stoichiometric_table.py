@@ -15,8 +15,7 @@ from typing import Literal
 
 import numpy as np
 
-from core.arrays import FloatArray
-from core.constants import GAS_CONSTANT
+from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fault, Note, Refused, refuse
 from core.mole_account.expressions import (
     concentration_expression,
@@ -26,7 +25,7 @@ from core.mole_account.expressions import (
 )
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.reactions.reaction_set import ReactionSet
-from core.streams.stream import Stream
+from core.streams.stream import Stream, phase_sum
 
 Hold = Literal["volume", "pressure"]
 Role = Literal["key", "reactant", "product", "inert"]
@@ -85,13 +84,10 @@ class States:
         None where dependent reactions leave them open.
     flows, changes : ndarray, shape (n, S)
         mol/s (batch: mol).
-    totals : ndarray, shape (n,)
-        All substances, mol/s.
-    mole_fractions : ndarray, shape (n, S)
-        Of the stream's own phase; NaN for a substance outside it.
-    concentrations : ndarray, shape (n, S), or None
-        mol/m3; NaN for a substance outside the phase. None if the volume is
-        not known.
+    in_phase : ndarray of bool, shape (S,)
+        Which substances are in the stream's own phase.
+    phase_totals : ndarray, shape (n,)
+        Of these substances, mol/s.
     volumetric_flows : ndarray, shape (n,), or None
         m3/s (batch: m3).
     temperature, compressibility : float or None
@@ -105,14 +101,34 @@ class States:
     extents: FloatArray | None
     flows: FloatArray
     changes: FloatArray
-    totals: FloatArray
-    mole_fractions: FloatArray
-    concentrations: FloatArray | None
+    in_phase: BoolArray
+    phase_totals: FloatArray
     volumetric_flows: FloatArray | None
     temperature: float | None
     pressures: FloatArray | None
     compressibility: float
     constant_flow_error: FloatArray
+
+    @cached_property
+    def totals(self) -> FloatArray:
+        """All substances, shape (n,), mol/s."""
+        totals: FloatArray = self.flows.sum(axis=1)
+        return totals
+
+    @cached_property
+    def mole_fractions(self) -> FloatArray:
+        """Of the stream's own phase, shape (n, S); NaN for a substance outside it."""
+        return self._within / self.phase_totals[:, None]
+
+    @cached_property
+    def concentrations(self) -> FloatArray | None:
+        """Shape (n, S), mol/m3; NaN outside the phase. None if the volume is not known."""
+        volumes = self.volumetric_flows
+        return None if volumes is None else self._within / volumes[:, None]
+
+    @property
+    def _within(self) -> FloatArray:
+        return np.where(self.in_phase, self.flows, np.nan)
 
 
 @dataclass(frozen=True, eq=False)
@@ -158,6 +174,66 @@ class StoichiometricTable:
         return tuple(_expressions(self))
 
 
+@dataclass(frozen=True, eq=False)
+class _Account:
+    """What the reactions, the key and the phase alone decide, whatever the feed.
+
+    Attributes
+    ----------
+    roles : tuple of Role, length S
+    consumer : int
+        The reaction that consumes the key most.
+    consumed : float
+        Of the key by that reaction, -; not above zero where none consumes it.
+    sizes : ndarray, shape (R, S)
+        Coefficients without their signs.
+    delta : float or None
+        For one reaction that consumes the key.
+    moles_change : bool
+        Whether any reaction changes the moles in the phase.
+    """
+
+    roles: tuple[Role, ...]
+    consumer: int
+    consumed: float
+    sizes: FloatArray
+    delta: float | None
+    moles_change: bool
+
+
+# Worked out once: a plant asks about few accounts, each of them many times.
+@lru_cache(maxsize=256)
+def _account(reactions: ReactionSet, key: int, in_phase: bytes) -> _Account:
+    nu = reactions.nu
+    within = nu[:, np.frombuffer(in_phase, dtype=bool)]
+    change = within.sum(axis=1)
+    consumer = int(np.argmin(nu[:, key]))
+    consumed = float(-nu[consumer, key])
+    sizes = np.abs(nu)
+    sizes.setflags(write=False)
+    return _Account(
+        roles=_roles(nu, key),
+        consumer=consumer,
+        consumed=consumed,
+        sizes=sizes,
+        delta=float(change[0]) / consumed if len(nu) == 1 and consumed > 0 else None,
+        moles_change=bool((np.abs(change) > ROUNDING * np.abs(within).sum(axis=1)).any()),
+    )
+
+
+def _roles(nu: FloatArray, key: int) -> tuple[Role, ...]:
+    consumed, made = nu.min(axis=0) < 0, nu.max(axis=0) > 0
+    roles: list[Role] = []
+    for i in range(nu.shape[1]):
+        if i == key:
+            roles.append("key")
+        elif consumed[i]:
+            roles.append("reactant")
+        else:
+            roles.append("product" if made[i] else "inert")
+    return tuple(roles)
+
+
 def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
     """Return the stoichiometric table of a feed.
 
@@ -168,24 +244,19 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
         ``conversion-out-of-reach``, ``extents-out-of-reach``,
         ``condition-missing``, ``pressure-follows``.
     """
-    _check(problem)
     reactions, key, inlet = problem.reactions, problem.key, problem.inlet
-    nu, feed = reactions.nu, inlet.flows
+    account = _account(reactions, key, inlet.in_phase.tobytes())
+    _check(problem, account)
+    feed = inlet.flows
     reach = conversion_range(reactions, key, feed)
-    extents = _extents(problem, reach)
-    states = _states(problem, extents)
-    in_phase = inlet.in_phase
-    one = len(reactions.reactions) == 1
-    delta = epsilon = None
-    share = float(feed[key] / inlet.phase_total)
-    if one:
-        delta = float(nu[0, in_phase].sum() / -nu[0, key])
-        epsilon = share * delta
-    fails = _fails_because(problem)
+    extents = _extents(problem, account, reach)
+    states = _states(problem, account, extents)
+    fed = float(feed[key])
+    share = fed / float(inlet.phase_total)
     notes: list[Note] = []
-    if states.concentrations is None:
+    if states.volumetric_flows is None:
         notes.append(_no_concentrations(inlet))
-    if reactions.rank < len(reactions.reactions) and states.extents is None:
+    if states.extents is None:
         notes.append(
             Note(
                 "extents-not-unique",
@@ -196,19 +267,19 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
     return StoichiometricTable(
         problem=problem,
         range=reach,
-        theta=feed / feed[key],
-        delta=delta,
-        epsilon=epsilon,
-        key_mole_fraction=share if in_phase[key] else None,
-        roles=_roles(reactions, key),
+        theta=feed / fed,
+        delta=account.delta,
+        epsilon=None if account.delta is None else share * account.delta,
+        key_mole_fraction=share if inlet.in_phase[key] else None,
+        roles=account.roles,
         states=states,
-        fails_because=fails,
+        fails_because=_fails_because(problem, account),
         notes=tuple(notes),
         assumed=_assumed(problem),
     )
 
 
-def _check(problem: TableProblem) -> None:
+def _check(problem: TableProblem, account: _Account) -> None:
     reactions, key, inlet, outlet = (
         problem.reactions,
         problem.key,
@@ -225,7 +296,7 @@ def _check(problem: TableProblem) -> None:
                 f"the feed holds no {name}; the key reactant needs a flow above zero",
             )
         )
-    if not (reactions.nu[:, key] < 0).any():
+    if not account.consumed > 0:
         faults.append(
             Fault(
                 "key-not-consumed",
@@ -263,9 +334,8 @@ def _unknown_conditions(problem: TableProblem) -> list[Fault]:
     ]
 
 
-def _extents(problem: TableProblem, reach: ConversionRange) -> FloatArray:
-    reactions, key, feed = problem.reactions, problem.key, problem.inlet.flows
-    nu = reactions.nu
+def _extents(problem: TableProblem, account: _Account, reach: ConversionRange) -> FloatArray:
+    reactions = problem.reactions
     if problem.extents is not None:
         _check_extents(problem, problem.extents)
         return problem.extents
@@ -281,9 +351,9 @@ def _extents(problem: TableProblem, reach: ConversionRange) -> FloatArray:
         )
     _check_conversions(problem, reach)
     # With dependent reactions any one that consumes the key stands for them all.
-    j = int(np.argmin(nu[:, key]))
     extents = np.zeros((conversions.size, len(reactions.reactions)))
-    extents[:, j] = conversions * feed[key] / -nu[j, key]
+    fed = float(problem.inlet.flows[problem.key])
+    extents[:, account.consumer] = conversions * fed / account.consumed
     return extents
 
 
@@ -291,7 +361,7 @@ def _check_conversions(problem: TableProblem, reach: ConversionRange) -> None:
     assert problem.conversions is not None
     names = problem.reactions.names
     faults = []
-    for i, x in enumerate(problem.conversions):
+    for i, x in enumerate(problem.conversions.tolist()):
         if x > reach.largest + ROUNDING:
             assert reach.limiting is not None
             faults.append(
@@ -300,7 +370,7 @@ def _check_conversions(problem: TableProblem, reach: ConversionRange) -> None:
                     ("conversions", i),
                     f"found {{found}}; at {{limit}} {names[reach.limiting]} is used up, so at most"
                     " that can be asked for",
-                    {"found": Amount(float(x)), "limit": Amount(reach.largest)},
+                    {"found": Amount(x), "limit": Amount(reach.largest)},
                 )
             )
         elif x < reach.smallest - ROUNDING:
@@ -315,7 +385,7 @@ def _check_conversions(problem: TableProblem, reach: ConversionRange) -> None:
                     "conversion-out-of-reach",
                     ("conversions", i),
                     f"found {{found}}; at least {{limit}} can be asked for: {why}",
-                    {"found": Amount(float(x)), "limit": Amount(reach.smallest)},
+                    {"found": Amount(x), "limit": Amount(reach.smallest)},
                 )
             )
     if faults:
@@ -354,39 +424,33 @@ def _check_extents(problem: TableProblem, extents: FloatArray) -> None:
         raise Refused(faults)
 
 
-def _states(problem: TableProblem, extents: FloatArray) -> States:
-    reactions, inlet, outlet, key = (
-        problem.reactions,
-        problem.inlet,
-        problem.outlet,
-        problem.key,
-    )
-    changes = extents @ reactions.nu
+def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> States:
+    # The plainest form of each step: on one state the arrays are so small that what is
+    # called counts, not what it adds up.
+    reactions, inlet, outlet = problem.reactions, problem.inlet, problem.outlet
+    changes = extents.dot(reactions.nu)
     flows = inlet.flows + changes
     # What rounding leaves of a substance that is used up exactly is nothing.
-    passing = inlet.flows + np.abs(extents) @ np.abs(reactions.nu)
-    flows = np.where(np.abs(flows) <= ROUNDING * passing, 0.0, flows)
-    in_phase = inlet.in_phase
-    phase_totals = flows[:, in_phase].sum(axis=1)
-    if not (phase_totals > 0).all():
+    passing = inlet.flows + abs(extents).dot(account.sizes)
+    flows[abs(flows) <= ROUNDING * passing] = 0.0
+    phase_totals = phase_sum(flows, inlet.in_phase)
+    if not all(total > 0 for total in phase_totals.tolist()):
         raise refuse(
             "phase-vanishes",
             ("feed",),
             f"at such a conversion nothing is left in the {inlet.phase}; state a smaller one",
         )
-    outside = np.where(in_phase, 1.0, np.nan)
     temperature = inlet.temperature if outlet.temperature is None else outlet.temperature
     z = inlet.compressibility if outlet.compressibility is None else outlet.compressibility
     pressures, volumes, error = _volumes(problem, phase_totals, temperature, z)
     unique = reactions.rank == len(reactions.reactions) or problem.extents is not None
     return States(
-        conversions=-changes[:, key] / inlet.flows[key],
+        conversions=-changes[:, problem.key] / float(inlet.flows[problem.key]),
         extents=extents if unique else None,
         flows=flows,
         changes=changes,
-        totals=flows.sum(axis=1),
-        mole_fractions=flows * outside / phase_totals[:, None],
-        concentrations=None if volumes is None else flows * outside / volumes[:, None],
+        in_phase=inlet.in_phase,
+        phase_totals=phase_totals,
         volumetric_flows=volumes,
         temperature=temperature,
         pressures=pressures,
@@ -401,36 +465,37 @@ def _volumes(
     """Return pressures, volumetric flows and the error of taking the latter as constant."""
     inlet, outlet = problem.inlet, problem.outlet
     n = phase_totals.size
-    v0 = inlet.volumetric_flow
+    v0 = None if inlet.volumetric_flow is None else float(inlet.volumetric_flow)
+    pressure = inlet.pressure if outlet.pressure is None else outlet.pressure
     if inlet.phase == "liquid":
-        pressure = inlet.pressure if outlet.pressure is None else outlet.pressure
-        pressures = None if pressure is None else np.full(n, pressure)
-        volumes = None if v0 is None else np.full(n, float(v0))
-        return pressures, volumes, np.zeros(n)
-    warmer = 1.0
+        return _all(n, pressure), _all(n, v0), np.zeros(n)
+    ratio = phase_totals / float(inlet.phase_total)
     if inlet.temperature is not None and temperature is not None:
-        warmer = temperature / inlet.temperature
-    ratio = phase_totals / inlet.phase_total * warmer * (z / inlet.compressibility)
+        ratio = _times(ratio, temperature / inlet.temperature)
+    ratio = _times(ratio, z / inlet.compressibility)
     if inlet.batch and problem.hold == "volume":
         pressures = None if inlet.pressure is None else inlet.pressure * ratio
-        return pressures, None if v0 is None else np.full(n, float(v0)), np.zeros(n)
-    pressure = inlet.pressure if outlet.pressure is None else outlet.pressure
-    pressures = None if pressure is None else np.full(n, pressure)
+        return pressures, _all(n, v0), np.zeros(n)
     if inlet.pressure is not None and pressure is not None:
-        ratio = ratio * (inlet.pressure / pressure)
-    volumes = None if v0 is None else ratio * float(v0)
-    return pressures, volumes, ratio - 1.0
+        ratio = _times(ratio, inlet.pressure / pressure)
+    return _all(n, pressure), None if v0 is None else ratio * v0, ratio - 1.0
 
 
-def _fails_because(problem: TableProblem) -> tuple[str, ...]:
+def _all(n: int, value: float | None) -> FloatArray | None:
+    return None if value is None else np.array([value] * n)
+
+
+def _times(values: FloatArray, factor: float) -> FloatArray:
+    # Most factors are those of conditions that do not change.
+    return values if factor == 1.0 else values * factor
+
+
+def _fails_because(problem: TableProblem, account: _Account) -> tuple[str, ...]:
     inlet, outlet = problem.inlet, problem.outlet
     if inlet.phase == "liquid" or (inlet.batch and problem.hold == "volume"):
         return ()
-    nu = problem.reactions.nu[:, inlet.in_phase]
-    fails = []
-    if (np.abs(nu.sum(axis=1)) > ROUNDING * np.abs(nu).sum(axis=1)).any():
-        fails.append("moles-change")
-    return (*fails, *(f"{name}-changes" for name in _changes(inlet, outlet)))
+    changed = (f"{name}-changes" for name in _changes(inlet, outlet))
+    return ("moles-change", *changed) if account.moles_change else tuple(changed)
 
 
 def _changes(inlet: Stream, outlet: OutletConditions) -> list[str]:
@@ -440,21 +505,6 @@ def _changes(inlet: Stream, outlet: OutletConditions) -> list[str]:
         if after is not None and abs(after - before) > ROUNDING * before:
             changed.append(name)
     return changed
-
-
-@lru_cache(maxsize=256)
-def _roles(reactions: ReactionSet, key: int) -> tuple[Role, ...]:
-    nu = reactions.nu
-    consumed, made = nu.min(axis=0) < 0, nu.max(axis=0) > 0
-    roles: list[Role] = []
-    for i in range(nu.shape[1]):
-        if i == key:
-            roles.append("key")
-        elif consumed[i]:
-            roles.append("reactant")
-        else:
-            roles.append("product" if made[i] else "inert")
-    return tuple(roles)
 
 
 def _no_concentrations(inlet: Stream) -> Note:
@@ -503,7 +553,7 @@ def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
         theta, ratio, is_key = float(table.theta[i]), float(nu[i] / -nu[key]), i == key
         flow = flow_expression(name, names[key], theta, ratio, batch=batch, is_key=is_key)
         concentration = None
-        if inlet.in_phase[i] and inlet.in_phase[key] and states.concentrations is not None:
+        if inlet.in_phase[i] and inlet.in_phase[key] and states.volumetric_flows is not None:
             concentration = concentration_expression(
                 name,
                 names[key],
@@ -515,20 +565,3 @@ def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
             )
         told.append((flow, concentration))
     return told
-
-
-def inlet_concentrations(inlet: Stream) -> FloatArray | None:
-    """Return concentrations of the inlet, shape (S,), mol/m3; NaN outside the phase."""
-    v = inlet.volumetric_flow
-    if v is None:
-        return None
-    concentrations: FloatArray = np.where(inlet.in_phase, inlet.flows / v, np.nan)
-    return concentrations
-
-
-def charge_pressure(inlet: Stream, volume: float) -> float | None:
-    """Return the pressure of a gas charge in a known volume, Pa; None without temperature."""
-    if inlet.temperature is None:
-        return None
-    amount = float(inlet.phase_total)
-    return inlet.compressibility * amount * GAS_CONSTANT * inlet.temperature / volume

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 
@@ -12,7 +13,7 @@ from core.constants import GAS_CONSTANT
 from core.errors import Amount, Note, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import Measurement, MeteredStream
-from core.streams.stream import Stream, StreamPhase
+from core.streams.stream import Stream, StreamPhase, phase_sum
 
 CONTRADICTION = 0.01
 """Relative difference between a stated volume and that of the gas law which is refused."""
@@ -42,12 +43,13 @@ def is_direct(stream: MeteredStream) -> bool:
 
 def direct_flows(stream: MeteredStream, molar_masses: FloatArray) -> FloatArray:
     """Return the flows of a stream that :func:`is_direct`, shape (S,), mol/s (batch: mol)."""
-    flows = np.zeros(molar_masses.size)
+    # Filled one by one, which a list is much better at than an array.
+    flows = [0.0] * molar_masses.size
     for reading in stream.flows:
         if reading.substance is None:
             continue
         value = reading.measurement.value
-        per_mole = molar_masses[reading.substance] if reading.kind == "mass" else 1.0
+        per_mole = float(molar_masses[reading.substance]) if reading.kind == "mass" else 1.0
         flows[reading.substance] += value / per_mole
     if stream.analysis is not None:
         volume = stated_volume(stream)
@@ -55,9 +57,9 @@ def direct_flows(stream: MeteredStream, molar_masses: FloatArray) -> FloatArray:
         by_mass = stream.analysis.basis == "mass-concentration"
         for component in stream.analysis.components:
             (i,) = component.weights
-            per_mole = molar_masses[i] if by_mass else 1.0
+            per_mole = float(molar_masses[i]) if by_mass else 1.0
             flows[i] += component.measurement.value * volume / per_mole
-    return flows
+    return np.array(flows)
 
 
 def stated_volume(stream: MeteredStream) -> float | None:
@@ -68,9 +70,12 @@ def stated_volume(stream: MeteredStream) -> float | None:
     return None
 
 
+@lru_cache(maxsize=256)
 def in_phase(reactions: ReactionSet, phase: StreamPhase) -> BoolArray:
-    """Return which substances are in a stream of this phase, shape (S,)."""
-    return np.array([s.phase is None or s.phase == phase for s in reactions.substances])
+    """Return which substances are in a stream of this phase, shape (S,); read-only."""
+    present = np.array([s.phase is None or s.phase == phase for s in reactions.substances])
+    present.setflags(write=False)
+    return present
 
 
 def join_streams(
@@ -108,7 +113,8 @@ def join_streams(
         ``no-flow`` when nothing flows; ``volume-contradicts-conditions``.
     """
     present = in_phase(reactions, conditions.phase)
-    if not flows[present].sum() > 0:
+    total = float(phase_sum(flows, present))
+    if not total > 0:
         raise refuse(
             "no-flow",
             conditions.subject,
@@ -117,14 +123,12 @@ def join_streams(
     temperature = _value(conditions.temperature)
     pressure = _value(conditions.pressure)
     volume, assumed = _volume(reactions, flows, streams, conditions, each)
-    if conditions.phase == "gas" and volume is not None:
-        total = float(flows[present].sum())
-        if temperature is not None:
-            follows = conditions.compressibility * total * GAS_CONSTANT * temperature / volume
-            _agree(conditions, follows, pressure)
-            if pressure is None:
-                pressure = follows
-                assumed = (*assumed, _pressure_follows(follows))
+    if conditions.phase == "gas" and volume is not None and temperature is not None:
+        follows = conditions.compressibility * total * GAS_CONSTANT * temperature / volume
+        _agree(conditions, follows, pressure)
+        if pressure is None:
+            pressure = follows
+            assumed = (*assumed, _pressure_follows(follows))
     stream = Stream(
         flows=flows,
         in_phase=present,
