@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from itertools import compress
 
 import numpy as np
 from marshmallow import fields
@@ -185,27 +186,31 @@ def write_stream(
         And of their sum.
     """
     words = words_of(batch)
+    word = words.flow
     scale = edge.scales[words.flow_dimension]
     unit, factor = scale.unit, scale.factor
-    concentration = edge.scales["concentration"]
-    per_volume = None if volume is None else concentration.factor * volume
-    total = float(flows.sum())
-    inside = in_phase.tolist()
-    phase_total = total if all(inside) else float(flows[in_phase].sum())
+    per_volume = None
+    if volume is not None:
+        concentration = edge.scales["concentration"]
+        of_concentration, per_volume = concentration.unit, concentration.factor * volume
+    inside, values = in_phase.tolist(), flows.tolist()
+    total = phase_total = sum(values)
+    if not all(inside):
+        phase_total = sum(compress(values, inside))
     species: Json = {}
-    for name, flow, within in zip(names, flows.tolist(), inside, strict=True):
-        said: Json = {words.flow: {"value": flow / factor, "unit": unit}}
+    for name, flow, within in zip(names, values, inside, strict=True):
+        said: Json = {word: {"value": flow / factor, "unit": unit}}
         if within:
             said["mole_fraction"] = {"value": flow / phase_total, "unit": "1"}
             said["concentration"] = (
                 None
                 if per_volume is None
-                else {"value": flow / per_volume, "unit": concentration.unit}
+                else {"value": flow / per_volume, "unit": of_concentration}
             )
         species[name] = said
     if u is not None:
         for said, spread in zip(species.values(), u.tolist(), strict=True):
-            said[words.flow]["u"] = spread / factor
+            said[word]["u"] = spread / factor
     stream: Json = {}
     if temperature is not None:
         stream["temperature"] = edge.number(temperature, "temperature")

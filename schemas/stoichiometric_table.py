@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -9,6 +10,7 @@ from marshmallow import fields
 
 from core.mole_account.stoichiometric_table import (
     OutletConditions,
+    Role,
     StoichiometricTable,
     TableProblem,
 )
@@ -270,18 +272,25 @@ def _plain(value: float) -> Json:
 
 
 def _species(table: StoichiometricTable) -> Json:
-    reactions = table.problem.reactions
+    return {
+        name: {**role, "theta": _plain(theta)}
+        for (name, role), theta in zip(
+            _told_roles(table.problem.reactions, table.roles), table.theta.tolist(), strict=True
+        )
+    }
+
+
+@lru_cache(maxsize=256)
+def _told_roles(reactions: ReactionSet, roles: tuple[Role, ...]) -> list[tuple[str, Json]]:
+    """Return role and coefficients of each substance, which do not depend on the feed."""
     ids = [reaction.id for reaction in reactions.reactions]
-    species: Json = {}
-    for name, role, theta, column in zip(
-        reactions.names, table.roles, table.theta.tolist(), reactions.nu.T.tolist(), strict=True
-    ):
+    told = []
+    for name, role, column in zip(reactions.names, roles, reactions.nu.T.tolist(), strict=True):
         said: Json = {"role": role}
         if role != "inert":
             said["coefficients"] = {j: nu for j, nu in zip(ids, column, strict=True) if nu}
-        said["theta"] = _plain(theta)
-        species[name] = said
-    return species
+        told.append((name, said))
+    return told
 
 
 def _states(table: StoichiometricTable, edge: EdgeMap) -> list[Json]:

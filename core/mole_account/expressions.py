@@ -3,43 +3,28 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import lru_cache
 
 from core.arrays import FloatArray
 
 
-def flow_expression(
-    name: str, key: str, theta: float, ratio: float, *, batch: bool, is_key: bool
-) -> str:
-    """Return the flow of a substance as a function of the key's conversion.
+def term(name: str, key: str, theta: float, ratio: float, *, is_key: bool) -> str:
+    """Return what stands behind F, N or C of a substance, as a function of the key's conversion.
 
     ``F_i = F_A0 (theta_i + nu_i/|nu_A| X)``; ``ratio`` is ``nu_i/|nu_A|``. A
     substance that takes no part keeps its flow.
     """
-    letter = "N" if batch else "F"
-    if ratio == 0:
-        return f"{letter}_{name}0"
-    return f"{letter}_{key}0 {_bracket(theta, ratio, is_key)}"
+    return f"{key}0 {_bracket(theta, ratio, is_key)}" if ratio else f"{name}0"
 
 
-def concentration_expression(
-    name: str,
-    key: str,
-    theta: float,
-    ratio: float,
-    *,
-    is_key: bool,
-    epsilon: float,
-    conditions: str,
-) -> str:
-    """Return the concentration of a substance as a function of the key's conversion.
+def volume_factors(epsilon: float, conditions: str) -> str:
+    """Return what turns the term of a flow into that of a concentration.
 
     ``epsilon`` 0 leaves the volume's own factor out; ``conditions`` is the text
     of the factors for temperature, pressure and compressibility, if any change.
     """
-    text = f"C_{key}0 {_bracket(theta, ratio, is_key)}" if ratio else f"C_{name}0"
-    if epsilon:
-        text += f"/(1 {_signed(epsilon)} X)"
-    return f"{text} {conditions}".rstrip()
+    expansion = f"/(1 {_signed(epsilon)} X)" if epsilon else ""
+    return f"{expansion} {conditions}".rstrip()
 
 
 def extents_expression(name: str, ids: Sequence[str], nu: FloatArray, *, batch: bool) -> str:
@@ -63,12 +48,13 @@ def condition_factors(changes: Sequence[str]) -> str:
 def _bracket(theta: float, ratio: float, is_key: bool) -> str:
     if is_key:
         return "(1 - X)"
-    term = _signed(ratio, "X")
+    change = _signed(ratio, "X")
     if theta == 0:
-        return f"({term.removeprefix('+ ').replace('- ', '-')})"
-    return f"({_figure(theta)} {term})"
+        return f"({change.removeprefix('+ ').replace('- ', '-')})"
+    return f"({_figure(theta)} {change})"
 
 
+@lru_cache(maxsize=1024)  # mostly the few ratios of coefficients
 def _signed(value: float, symbol: str = "") -> str:
     sign = "-" if value < 0 else "+"
     size = abs(value)

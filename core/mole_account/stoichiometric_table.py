@@ -18,10 +18,10 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fault, Note, Refused, refuse
 from core.mole_account.expressions import (
-    concentration_expression,
     condition_factors,
     extents_expression,
-    flow_expression,
+    term,
+    volume_factors,
 )
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.reactions.reaction_set import ReactionSet
@@ -535,7 +535,7 @@ def _assumed(problem: TableProblem) -> tuple[Note, ...]:
 
 
 def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
-    problem, states = table.problem, table.states
+    problem = table.problem
     reactions, inlet = problem.reactions, problem.inlet
     names, batch = reactions.names, inlet.batch
     if len(reactions.reactions) > 1:
@@ -544,24 +544,19 @@ def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
             (extents_expression(name, ids, reactions.nu[:, i], batch=batch), None)
             for i, name in enumerate(names)
         ]
-    nu, key = reactions.nu[0], problem.key
     held = inlet.phase == "liquid" or (batch and problem.hold == "volume")
     epsilon = 0.0 if held else table.epsilon or 0.0
     conditions = "" if held else condition_factors(_changes(inlet, problem.outlet))
+    factors = volume_factors(epsilon, conditions)
+    key, letter = problem.key, "N" if batch else "F"
+    in_phase = inlet.in_phase.tolist()
+    known = in_phase[key] and table.states.volumetric_flows is not None
+    nu = reactions.nu[0].tolist()
+    consumed = -nu[key]
     told: list[tuple[str, str | None]] = []
-    for i, name in enumerate(names):
-        theta, ratio, is_key = float(table.theta[i]), float(nu[i] / -nu[key]), i == key
-        flow = flow_expression(name, names[key], theta, ratio, batch=batch, is_key=is_key)
-        concentration = None
-        if inlet.in_phase[i] and inlet.in_phase[key] and states.volumetric_flows is not None:
-            concentration = concentration_expression(
-                name,
-                names[key],
-                theta,
-                ratio,
-                is_key=is_key,
-                epsilon=epsilon,
-                conditions=conditions,
-            )
-        told.append((flow, concentration))
+    for i, (name, theta, within) in enumerate(
+        zip(names, table.theta.tolist(), in_phase, strict=True)
+    ):
+        own = term(name, names[key], theta, nu[i] / consumed, is_key=i == key)
+        told.append((f"{letter}_{own}", f"C_{own}{factors}" if known and within else None))
     return told
