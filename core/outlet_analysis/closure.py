@@ -73,15 +73,15 @@ def element_closures(found: Estimate) -> Closures:
                 if not isinstance(outcome, Fitted):
                     continue
                 at = first + outcome.rows
-                covariance = outcome.covariance()
+                z, covariance = outcome.with_covariance()
                 everything = np.concatenate([into, out, account.feed_map, account.outlet_map])
                 hidden_of = np.split(_open(outcome, everything), [count, 2 * count])
                 open_in, open_out = hidden_of[:2]
                 for name, forms, hidden in (("into", into, open_in), ("out", out, open_out)):
-                    part = forms_of(outcome.z, covariance, forms)
+                    part = forms_of(z, covariance, forms)
                     values[name][at] = np.where(hidden, np.nan, part.value)
                     spread[name][at] = np.where(hidden, np.nan, part.u)
-                part = ratios(outcome.z, covariance, out, into)
+                part = ratios(z, covariance, out, into)
                 hidden = open_in | open_out | tied
                 values["ratio"][at] = np.where(hidden, np.nan, part.value)
                 spread["ratio"][at] = np.where(hidden, np.nan, part.u)

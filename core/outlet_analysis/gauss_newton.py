@@ -30,10 +30,12 @@ from core.outlet_analysis.forms import Evaluation, Forms
 IntArray: TypeAlias = NDArray[np.intp]
 
 MOST_STEPS = 100
-SMALL_DECREMENT = 1e-10
+SMALL_DECREMENT = 1e-6
 """Square of the last step in units of the standard uncertainties of the unknowns."""
-SMALL_STEP = 1e-7
-"""Last step, relative to the natural size of the unknowns, where equations must be met."""
+NEGLIGIBLE_DECREMENT = 1e-16
+"""What the step that is taken with the covariance may leave of it."""
+SMALL_MISS = 1e-7
+"""How near an exact reading must be met, relative, before the last step squares what is left."""
 ROUNDING_STEP = 1e-13
 """A step that rounding alone can make, relative."""
 SUFFICIENT = 0.2
@@ -93,12 +95,14 @@ class Curvature:
 
     Attributes
     ----------
+    z : ndarray, shape (N, n)
+        The solution, one step further on.
     covariance : ndarray, shape (N, n, n)
         Of the unknowns.
     variance : ndarray, shape (N, m)
         Of the fitted values.
     residual : ndarray, shape (N, m)
-        measured - fitted, one linear step of the fit further on.
+        measured - fitted, one step further on.
     redundancy : ndarray, shape (N, m)
         1 - leverage; 0 of a missing or an exact reading.
     control : ndarray, shape (N, m)
@@ -112,6 +116,7 @@ class Curvature:
         the others known; infinite where the matrix is singular.
     """
 
+    z: FloatArray
     covariance: FloatArray
     variance: FloatArray
     residual: FloatArray
@@ -123,6 +128,7 @@ class Curvature:
     def samples(self, rows: BoolArray) -> Curvature:
         """Return those of the samples marked."""
         return Curvature(
+            self.z[rows],
             self.covariance[rows],
             self.variance[rows],
             self.residual[rows],
@@ -173,7 +179,8 @@ def _system(
     seen = diagonal > 0
     size = np.where(seen, 1 / np.sqrt(np.where(seen, diagonal, 1.0)), natural)
     n, c = h.shape[-1], a.shape[1]
-    scaled = h * size[:, :, None] * size[:, None, :]
+    scaled = h * size[:, :, None]
+    scaled *= size[:, None, :]
     if np.any(damping):
         scaled[:, range(n), range(n)] += np.asarray(damping)[..., None]
     if not c:
@@ -230,6 +237,7 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     rows = np.arange(len(z_all))
     z, sizes = z_all, natural
     damping = np.zeros(len(z_all))
+    previous = np.full(len(z_all), np.inf)
     found = fit.forms.at(z)
     for _ in range(MOST_STEPS):
         h, g, a = _matrices(fit, found)
@@ -250,19 +258,27 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         tried = fit.forms.at(trial)
         # What the merit falls by along the step, at first order.
         gain = (g * step).sum(axis=-1)
-        multipliers = None
+        hard = None
         if c:
-            multipliers = solved[:, n:] / system.gauge
-            gain = gain + _stiff_gain(fit, multipliers, gap, (a @ step[:, :, None])[:, :, 0])
-        before = _merit(fit, found, multipliers)
-        after = _merit(fit, tried, multipliers)
+            hard = _hard_weights(fit, solved[:, n:] / system.gauge)
+            moved = (a @ step[:, :, None])[:, :, 0]
+            gain = gain + (hard[0] * np.abs(gap) + hard[1] * gap * moved).sum(axis=-1)
+            decrement = decrement + (hard[1] * moved * moved).sum(axis=-1)
+        before = _merit(fit, found, hard)
+        after = _merit(fit, tried, hard)
         enough = before - SUFFICIENT * np.maximum(gain, 0.0) + ROUNDING * (1 + before)
         better: BoolArray = np.asarray(tried.inside & sound & (after <= enough))
-        settled = decrement < SMALL_DECREMENT
-        if c:
-            settled = settled & (relative < SMALL_STEP)
-        settled = settled | (relative < ROUNDING_STEP)
+        # Steps shrink by a steady factor: this one and the last tell what two more would leave.
         plain = damping == 0
+        rate = np.where(plain & (previous > 0), decrement / np.where(previous > 0, previous, 1), 1)
+        settled = decrement < SMALL_DECREMENT
+        settled &= (decrement * rate * rate < NEGLIGIBLE_DECREMENT) | (decrement < 1e-10)
+        if c:
+            reach = np.abs(a * sizes[:, None, :]).max(axis=-1)
+            miss = np.where(fit.compliance == 0, np.abs(gap), 0.0)
+            settled &= (miss <= SMALL_MISS * reach).all(axis=-1)
+        settled = settled | (relative < ROUNDING_STEP)
+        previous = np.where(plain, decrement, np.inf)
         done: BoolArray = np.asarray(settled & plain & sound)
         if better.all():
             z, found = trial, tried
@@ -282,45 +298,35 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
             return Solution(z_all, converged)
         going = ~stopped
         rows, z, sizes, found = rows[going], z[going], sizes[going], found.where(going)
-        damping = damping[going]
+        damping, previous = damping[going], previous[going]
         fit = fit.samples(going)
     z_all[rows] = z
     return Solution(z_all, converged)
 
 
-def _stiffness(fit: Fit) -> FloatArray:
-    """Weights of the nearly exact readings in the merit, shape (N, c); 0 of the others.
+def _hard_weights(fit: Fit, multipliers: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Weights in the merit of the misses of exact readings, and of the squares of nearly exact.
 
-    Below what rounding leaves of a residual its square says nothing.
+    Both of shape (N, c). Below what rounding leaves of a residual its square
+    says nothing.
     """
+    exact = (fit.compliance == 0) & np.isfinite(multipliers)
+    penalty = np.where(exact, 2 * np.abs(np.where(exact, multipliers, 0.0)), 0.0)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
+    if not near.any():
+        return penalty, np.zeros_like(penalty)
     soft = fit.compliance + (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
-    return np.where(near, 1 / np.where(near, soft, 1.0), 0.0)
+    return penalty, np.where(near, 1 / np.where(near, soft, 1.0), 0.0)
 
 
-def _penalty(fit: Fit, multipliers: FloatArray) -> FloatArray:
-    """Weights of the exact readings in the merit, shape (N, c); 0 of the others."""
-    usable = (fit.compliance == 0) & np.isfinite(multipliers)
-    return np.where(usable, 2 * np.abs(np.where(usable, multipliers, 0.0)), 0.0)
-
-
-def _merit(fit: Fit, of: Evaluation, multipliers: FloatArray | None) -> FloatArray:
-    """Half the weighted squares, and the misses of the exact readings, shape (N,)."""
+def _merit(fit: Fit, of: Evaluation, hard: tuple[FloatArray, FloatArray] | None) -> FloatArray:
+    """Half the weighted squares, and the misses of the stiff readings, shape (N,)."""
     residual = fit.measured - of.value
     total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
-    if multipliers is not None:
+    if hard is not None:
         gap = np.abs(residual[:, fit.stiff])
-        hard = (_penalty(fit, multipliers) + 0.5 * _stiffness(fit) * gap) * gap
-        total = total + hard.sum(axis=-1)
+        total = total + ((hard[0] + 0.5 * hard[1] * gap) * gap).sum(axis=-1)
     return total
-
-
-def _stiff_gain(
-    fit: Fit, multipliers: FloatArray, gap: FloatArray, moved: FloatArray
-) -> FloatArray:
-    """First-order fall of the merit of the stiff readings, whose values move by ``moved``."""
-    exact = _penalty(fit, multipliers) * np.abs(gap)
-    return np.asarray((exact + _stiffness(fit) * gap * moved).sum(axis=-1))
 
 
 def linear_step(
@@ -350,60 +356,74 @@ def linear_step(
     return np.where(np.isfinite(z), z, nominal)
 
 
-def _inverse(
-    fit: Fit, slopes: FloatArray, natural: FloatArray
-) -> tuple[_System, FloatArray, FloatArray]:
-    """The system of the last step, its inverse, and the covariance of the unknowns."""
-    weighted = slopes * np.sqrt(fit.weight)[:, :, None]
-    h = weighted.transpose(0, 2, 1) @ weighted
+@dataclass(frozen=True, eq=False)
+class _Rest:
+    """What a fit looks like where it came to rest, and the step that is left to take."""
+
+    slopes: FloatArray
+    residual: FloatArray
+    size: FloatArray
+    gauge: FloatArray
+    inverse: FloatArray
+    covariance: FloatArray
+    step: FloatArray
+
+
+def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
+    found = fit.forms.at(z)
+    slopes = fit.forms.jacobian(found)
+    residual = fit.measured - found.value
+    weighted = slopes * fit.weight[:, :, None]
+    transposed = weighted.transpose(0, 2, 1)
+    h = transposed @ slopes
     system = _system(h, slopes[:, fit.stiff], fit.compliance, natural, 0.0)
     n = h.shape[-1]
     identity = np.broadcast_to(np.eye(system.matrix.shape[-1]), system.matrix.shape)
     inverse = solve_stack(system.matrix, identity)
-    covariance = inverse[:, :n, :n] * system.size[:, :, None] * system.size[:, None, :]
-    return system, inverse, covariance
+    covariance = inverse[:, :n, :n] * system.size[:, :, None]
+    covariance *= system.size[:, None, :]
+    right = system.size * (transposed @ residual[:, :, None])[:, :, 0]
+    if len(fit.stiff):
+        gap = np.where(np.isfinite(fit.compliance), residual[:, fit.stiff], 0.0)
+        right = np.concatenate([right, gap / system.gauge], axis=1)
+    step = (inverse @ right[:, :, None])[:, :, 0]
+    return _Rest(slopes, residual, system.size, system.gauge, inverse, covariance, step)
 
 
-def covariance_at(fit: Fit, z: FloatArray, natural: FloatArray) -> FloatArray:
-    """Covariance of the unknowns at a solution, shape (N, n, n)."""
-    return _inverse(fit, fit.forms.jacobian(fit.forms.at(z)), natural)[2]
+def covariance_at(fit: Fit, z: FloatArray, natural: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Return z one step further on, shape (N, n), and its covariance, shape (N, n, n)."""
+    rest = _rest(fit, z, natural)
+    return z + rest.size * rest.step[:, : z.shape[1]], rest.covariance
 
 
 def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     """Covariance of the unknowns, leverage and redundancy of the readings, at a solution."""
-    found = fit.forms.at(z)
-    slopes = fit.forms.jacobian(found)
-    system, inverse, covariance = _inverse(fit, slopes, natural)
-    n, c = covariance.shape[-1], len(fit.stiff)
-    scaled = inverse[:, :n, :n]
-    inflation = scaled.diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
+    rest = _rest(fit, z, natural)
+    slopes, covariance, inverse = rest.slopes, rest.covariance, rest.inverse
+    n, c = z.shape[1], len(fit.stiff)
+    inflation = inverse[:, :n, :n].diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
     inflation = np.where(np.isnan(inflation), np.inf, inflation)
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
-    residual = fit.measured - found.value
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
-    force = (slopes.transpose(0, 2, 1) @ (fit.weight * residual)[:, :, None])[:, :, 0]
-    right = system.size * force
-    if c:
-        there = np.isfinite(fit.compliance)
-        gap = np.where(there, residual[:, fit.stiff], 0.0)
-        right = np.concatenate([right, gap / system.gauge], axis=1)
-    step = (inverse @ right[:, :, None])[:, :, 0]
-    residual = residual - (slopes @ (system.size * step[:, :n])[:, :, None])[:, :, 0]
+    step = rest.size * rest.step[:, :n]
+    residual = rest.residual - (slopes @ step[:, :, None])[:, :, 0]
     control = redundancy
     if c:
         # u^2 (A H^-1 A' + D)^-1 from the corner of the inverse: 1 - leverage without
         # cancellation, and the residual from the multiplier likewise.
         corner = -inverse.diagonal(axis1=1, axis2=2)[:, n:]
+        there = np.isfinite(fit.compliance)
         compliance = np.where(there, fit.compliance, 0.0)
-        held = compliance / system.gauge**2 * corner
+        held = compliance / rest.gauge**2 * corner
         redundancy[:, fit.stiff] = held
         variance[:, fit.stiff] = np.where(there, compliance * (1 - held), variance[:, fit.stiff])
         residual[:, fit.stiff] = np.where(
-            there, -compliance * step[:, n:] / system.gauge, residual[:, fit.stiff]
+            there, -compliance * rest.step[:, n:] / rest.gauge, residual[:, fit.stiff]
         )
         control = np.array(redundancy)
         control[:, fit.stiff] = np.where(compliance > 0, corner, 0.0)
     return Curvature(
+        z + step,
         covariance,
         np.maximum(variance, 0.0),
         residual,

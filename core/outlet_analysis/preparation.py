@@ -61,6 +61,12 @@ class Block:
         """Which readings are exact, shape (N, m + 1)."""
         return np.asarray(self.active & (self.u == 0))
 
+    @property
+    def nearly_exact(self) -> BoolArray:
+        """Which readings have so small an uncertainty that they would drown the others."""
+        small = (self.u > 0) & (self.u < NEARLY_EXACT * np.abs(self.measured))
+        return np.asarray(self.active & small)
+
 
 @dataclass(frozen=True, eq=False)
 class Group:
@@ -186,13 +192,14 @@ def groups(block: Block) -> Iterator[Group | tuple[IntArray, Fault]]:
 
     Exact readings that cannot hold together come as the fault that says so.
     """
-    exact = block.exact
-    if not len(exact):
+    # Also by which are nearly exact: how a sample is solved must not depend on its neighbours.
+    kind = block.exact + 2 * block.nearly_exact
+    if not len(kind):
         return
-    if (exact == exact[0]).all():
-        yield _group(block, np.arange(len(exact)))
+    if (kind == kind[0]).all():
+        yield _group(block, np.arange(len(kind)))
         return
-    _, which = np.unique(np.packbits(exact, axis=1), axis=0, return_inverse=True)
+    _, which = np.unique(kind, axis=0, return_inverse=True)
     which = which.reshape(-1)
     for label in range(int(which.max()) + 1):
         yield _group(block, np.flatnonzero(which == label))
@@ -222,23 +229,23 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
             return rows, found
         kept, dependent = found
 
-    size = np.abs(block.measured)
-    nearly = block.active & (block.u > 0) & (block.u < NEARLY_EXACT * size)
-    stiff = np.union1d(kept, np.flatnonzero(nearly.any(axis=0))).astype(np.intp)
-    soft = block.active.copy()
-    soft[:, stiff] = False
-    soft[:, dependent] = False
-    positive = np.where(soft, block.u, 1.0)
-    weight = np.where(soft, (1 / positive) ** 2, 0.0)
+    nearly = np.flatnonzero(block.nearly_exact[0])
+    stiff, soft = kept, block.active
+    if len(nearly):
+        stiff = np.union1d(kept, nearly).astype(np.intp)
+    if len(exact) or len(stiff):
+        soft = soft.copy()
+        soft[:, stiff] = False
+        soft[:, dependent] = False
     there = block.active[:, stiff]
     fit = Fit(
         block.forms,
         block.measured,
-        weight,
+        _weights(soft, block.u),
         stiff,
         np.where(there, block.u[:, stiff] ** 2, np.inf),
     )
-    start_weight = np.where(soft, (1 / np.where(soft, u, 1.0)) ** 2, 0.0)
+    start_weight = _weights(soft, u)
     start = linear_step(
         slopes,
         right,
@@ -250,6 +257,11 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
     )
     start = _inside(block, start)
     return Group(rows, fit, start, natural_size(block.account, start), dependent)
+
+
+def _weights(soft: BoolArray, u: FloatArray) -> FloatArray:
+    """1/u^2 of the soft readings, 0 of the others."""
+    return np.where(soft, (1 / np.where(soft, u, 1.0)) ** 2, 0.0)
 
 
 def _inside(block: Block, start: FloatArray) -> FloatArray:

@@ -114,7 +114,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             sets, chosen = suspects(outcome, seen, u, loosened, m)
             if readings.samples is None:
                 without = without_suspects(outcome, chosen[0])
-        out.fill(at, outcome.z, seen, sets, m)
+        out.fill(at, seen, sets, m)
         if outcome.directions.shape[1]:
             moved = np.linalg.norm(outcome.directions, axis=1)
             out.told[at] = moved <= TOUCHED * outcome.natural
@@ -183,8 +183,8 @@ class _Results:
         self.sets = np.zeros((samples, m), dtype=np.intp)
         self.told = np.ones((samples, n), dtype=bool)
 
-    def fill(self, at: IntArray, z: FloatArray, seen: Examined, sets: IntArray, m: int) -> None:
-        self.z[at] = z
+    def fill(self, at: IntArray, seen: Examined, sets: IntArray, m: int) -> None:
+        self.z[at] = seen.curvature.z
         self.covariance[at] = seen.curvature.covariance
         self.reconciled[at] = seen.value[:, :m]
         self.reconciled_u[at] = np.sqrt(seen.curvature.variance[:, :m])

@@ -43,8 +43,8 @@ class Fitted:
     natural: FloatArray
     directions: FloatArray
 
-    def covariance(self) -> FloatArray:
-        """Covariance of the unknowns, shape (len(rows), n, n)."""
+    def with_covariance(self) -> tuple[FloatArray, FloatArray]:
+        """The unknowns and their covariance, shapes (len(rows), n) and (len(rows), n, n)."""
         return covariance_at(self.fit, self.z, self.natural)
 
 

@@ -83,7 +83,7 @@ def examine(
 ) -> Examined:
     """Test the readings proper: soft or nearly exact, those of ``limits`` (N, m') let loose."""
     at_solution = curvature(fit, z, natural)
-    value = fit.forms.at(z).value
+    value = fit.forms.at(at_solution.z).value
     weight = np.array(fit.weight)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
     weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
@@ -197,7 +197,7 @@ def without_suspects(fitted: Fitted, sets: list[list[int]]) -> tuple[WithoutSusp
     solution = least_squares(fit, fitted.z[copies], natural)
     bent = curvature(fit, solution.z, natural)
     return tuple(
-        WithoutSuspects(way, solution.z[k], bent.covariance[k])
+        WithoutSuspects(way, bent.z[k], bent.covariance[k])
         for k, way in enumerate(ways)
         if solution.converged[k] and bent.inflation[k] < SINGULAR
     )
