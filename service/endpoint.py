@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from functools import lru_cache
 from typing import Any
 
 import orjson
 from flask import Blueprint, Response, request
+from werkzeug.datastructures import MIMEAccept
+from werkzeug.http import parse_accept_header
 
 from schemas.answer import Answer
 from schemas.contract import Operation
@@ -30,9 +33,8 @@ def calculation(
         def view() -> Response:
             media = negotiate(*operation.media_types)
             pretty = pretty_asked()
-            document = read_json(request)
-            # Cached by read_json: the body is not read a second time.
-            name, of = digest(document, request.get_data(cache=True))
+            document, body = read_json(request)
+            name, of = digest(document, body)
             logs.annotate(digest=name)
             answered = answer(document)
             if media == CSV and answered.table is not None:
@@ -67,18 +69,23 @@ def negotiate(*offered: str) -> str:
     HttpFault
         406, when nothing offered is accepted.
     """
-    accept = request.accept_mimetypes
-    if not accept.provided:
-        return offered[0]
-    chosen = accept.best_match(offered)
+    accept = request.environ.get("HTTP_ACCEPT")
+    chosen = _best(accept, offered) if accept else offered[0]
     if chosen is None:
         raise HttpFault(
             406,
             "not-acceptable",
-            f"found Accept: {str(accept)[:80]}; this route answers {' or '.join(offered)}",
+            f"found Accept: {str(request.accept_mimetypes)[:80]}; this route answers"
+            f" {' or '.join(offered)}",
             header="Accept",
         )
     return chosen
+
+
+@lru_cache(maxsize=256)  # a client sends the same header with every request
+def _best(accept: str, offered: tuple[str, ...]) -> str | None:
+    accepted = parse_accept_header(accept, MIMEAccept)
+    return accepted.best_match(offered) if accepted.provided else offered[0]
 
 
 def pretty_asked(*also: str) -> bool:

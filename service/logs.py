@@ -11,7 +11,7 @@ import os
 import random
 import re
 import time
-from collections.abc import Iterable, Mapping, MutableMapping
+from collections.abc import Iterable, MutableMapping
 from datetime import UTC, datetime
 from typing import TYPE_CHECKING, Any
 
@@ -46,20 +46,19 @@ class _Output:
     debug = info = warning = error = critical = _write
 
 
-def _arrange(_logger: object, level: str, fields: MutableMapping[str, Any]) -> Mapping[str, Any]:
+def _render(logger: object, level: str, fields: MutableMapping[str, Any]) -> bytes:
+    if "exc_info" in fields:
+        structlog.processors.format_exc_info(logger, level, fields)
     now = datetime.now(UTC).isoformat(timespec="milliseconds")
-    return {"time": now, "level": level, "event": fields.pop("event"), **fields}
-
-
-def _render(_logger: object, _level: str, fields: Mapping[str, Any]) -> bytes:
-    return orjson.dumps(fields, default=str, option=orjson.OPT_APPEND_NEWLINE)
+    line = {"time": now, "level": level, "event": fields.pop("event"), **fields}
+    return orjson.dumps(line, default=str, option=orjson.OPT_APPEND_NEWLINE)
 
 
 def logger(level: int = logging.INFO) -> Any:
     """Return a logger whose lines of at least ``level`` reach standard output."""
     return structlog.wrap_logger(
         _Output(),
-        processors=[_arrange, structlog.processors.format_exc_info, _render],
+        processors=[_render],
         wrapper_class=structlog.make_filtering_bound_logger(level),
         cache_logger_on_first_use=True,
     ).bind()
