@@ -104,13 +104,10 @@ class Forms:
         product = self.constants * np.exp(np.log(base) @ self.exponents.T)
         return Evaluation(base, product, numerator * product, inside)
 
-    def jacobian(self, found: Evaluation, factor: FloatArray | None = None) -> FloatArray:
-        """Derivatives dh/dz, shape (N, m, n), each row times ``factor`` (N, m) if given."""
-        product, value = found.product, found.value
-        if factor is not None:
-            product, value = product * factor, value * factor
-        slopes = product[:, :, None] * self.numerators
+    def jacobian(self, found: Evaluation) -> FloatArray:
+        """Derivatives dh/dz, shape (N, m, n)."""
+        slopes = found.product[:, :, None] * self.numerators
         if len(self.bases):
-            shares = (value[:, :, None] * self.exponents) / found.base[:, None, :]
+            shares = (found.value[:, :, None] * self.exponents) / found.base[:, None, :]
             slopes += shares @ self.bases
         return slopes

@@ -31,9 +31,10 @@ IntArray: TypeAlias = NDArray[np.intp]
 
 MOST_STEPS = 100
 SMALL_DECREMENT = 1e-6
-"""Square of the last step in units of the standard uncertainties of the unknowns."""
+VERY_SMALL_DECREMENT = 1e-10
 NEGLIGIBLE_DECREMENT = 1e-16
-"""What the step that is taken with the covariance may leave of it."""
+"""Squares of a step in units of the standard uncertainties: of the last one, of a last one that
+nothing is known of, and of what the step taken with the covariance may leave."""
 SMALL_MISS = 1e-7
 """How near an exact reading must be met, relative, before the last step squares what is left."""
 ROUNDING_STEP = 1e-13
@@ -201,18 +202,68 @@ def _system(
     return _System(matrix, size, gauge)
 
 
-def _matrices(fit: Fit, found: Evaluation) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """J'WJ (N, n, n), J'W(y - h) (N, n), and the slopes of the equations (N, c, n)."""
-    root = np.sqrt(fit.weight)
-    j = fit.forms.jacobian(found, root)
-    jt = j.transpose(0, 2, 1)
-    g = (jt @ (root * (fit.measured - found.value))[:, :, None])[:, :, 0]
-    h = jt @ j
-    if len(fit.stiff):
-        a = fit.forms.jacobian(found)[:, fit.stiff]
-    else:
-        a = np.empty((len(h), 0, h.shape[-1]))
-    return h, g, a
+@dataclass(frozen=True, eq=False)
+class _Step:
+    """A step from where the fit stands, and what is to be expected of it; N samples.
+
+    Attributes
+    ----------
+    step : ndarray, shape (N, n)
+        0 where it is not ``sound``.
+    sound : ndarray of bool, shape (N,)
+        The system could be solved.
+    decrement : ndarray, shape (N,)
+        Square of the step in units of the uncertainties.
+    relative : ndarray, shape (N,)
+        Largest part of the step in natural sizes.
+    gain : ndarray, shape (N,)
+        First-order fall of the merit along the step.
+    hard : (ndarray, ndarray) or None
+        See :func:`_hard_weights`.
+    met : ndarray of bool, shape (N,)
+        Exact readings are nearly met already.
+    """
+
+    step: FloatArray
+    sound: BoolArray
+    decrement: FloatArray
+    relative: FloatArray
+    gain: FloatArray
+    hard: tuple[FloatArray, FloatArray] | None
+    met: BoolArray
+
+
+def _step(fit: Fit, found: Evaluation, sizes: FloatArray, damping: FloatArray) -> _Step:
+    residual = fit.measured - found.value
+    slopes = fit.forms.jacobian(found)
+    transposed = (slopes * fit.weight[:, :, None]).transpose(0, 2, 1)
+    h = transposed @ slopes
+    g = (transposed @ residual[:, :, None])[:, :, 0]
+    a = slopes[:, fit.stiff]
+    system = _system(h, a, fit.compliance, sizes, damping)
+    n, c = h.shape[-1], a.shape[1]
+    right = system.size * g
+    if c:
+        gap = residual[:, fit.stiff]
+        right = np.concatenate([right, gap / system.gauge], axis=1)
+    solved = solve_stack(system.matrix, right[:, :, None])[:, :, 0]
+    step = solved[:, :n] * system.size
+    sound: BoolArray = np.asarray(np.isfinite(step).all(axis=-1))
+    if not sound.all():
+        step = np.where(sound[:, None], step, 0.0)
+    decrement = ((h @ step[:, :, None])[:, :, 0] * step).sum(axis=-1)
+    relative = (np.abs(step) / sizes).max(axis=-1)
+    gain = (g * step).sum(axis=-1)
+    if not c:
+        return _Step(step, sound, decrement, relative, gain, None, sound)
+    hard = _hard_weights(fit, solved[:, n:] / system.gauge)
+    moved = (a @ step[:, :, None])[:, :, 0]
+    gain = gain + (hard[0] * np.abs(gap) + hard[1] * gap * moved).sum(axis=-1)
+    decrement = decrement + (hard[1] * moved * moved).sum(axis=-1)
+    reach = np.abs(a * sizes[:, None, :]).max(axis=-1)
+    miss = np.where(fit.compliance == 0, np.abs(gap), 0.0)
+    met: BoolArray = np.asarray((miss <= SMALL_MISS * reach).all(axis=-1))
+    return _Step(step, sound, decrement, relative, gain, hard, met)
 
 
 def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
@@ -240,46 +291,15 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     previous = np.full(len(z_all), np.inf)
     found = fit.forms.at(z)
     for _ in range(MOST_STEPS):
-        h, g, a = _matrices(fit, found)
-        system = _system(h, a, fit.compliance, sizes, damping)
-        n, c = h.shape[-1], a.shape[1]
-        gap = fit.measured[:, fit.stiff] - found.value[:, fit.stiff]
-        right = system.size * g
-        if c:
-            right = np.concatenate([right, gap / system.gauge], axis=1)
-        solved = solve_stack(system.matrix, right[:, :, None])[:, :, 0]
-        step = solved[:, :n] * system.size
-        sound: BoolArray = np.asarray(np.isfinite(step).all(axis=-1))
-        if not sound.all():
-            step = np.where(sound[:, None], step, 0.0)
-        decrement = ((h @ step[:, :, None])[:, :, 0] * step).sum(axis=-1)
-        relative = (np.abs(step) / sizes).max(axis=-1)
-        trial = z + step
+        next_ = _step(fit, found, sizes, damping)
+        trial = z + next_.step
         tried = fit.forms.at(trial)
-        # What the merit falls by along the step, at first order.
-        gain = (g * step).sum(axis=-1)
-        hard = None
-        if c:
-            hard = _hard_weights(fit, solved[:, n:] / system.gauge)
-            moved = (a @ step[:, :, None])[:, :, 0]
-            gain = gain + (hard[0] * np.abs(gap) + hard[1] * gap * moved).sum(axis=-1)
-            decrement = decrement + (hard[1] * moved * moved).sum(axis=-1)
-        before = _merit(fit, found, hard)
-        after = _merit(fit, tried, hard)
-        enough = before - SUFFICIENT * np.maximum(gain, 0.0) + ROUNDING * (1 + before)
-        better: BoolArray = np.asarray(tried.inside & sound & (after <= enough))
-        # Steps shrink by a steady factor: this one and the last tell what two more would leave.
+        before, after = _merit(fit, found, next_.hard), _merit(fit, tried, next_.hard)
+        enough = before - SUFFICIENT * np.maximum(next_.gain, 0.0) + ROUNDING * (1 + before)
+        better: BoolArray = np.asarray(tried.inside & next_.sound & (after <= enough))
         plain = damping == 0
-        rate = np.where(plain & (previous > 0), decrement / np.where(previous > 0, previous, 1), 1)
-        settled = decrement < SMALL_DECREMENT
-        settled &= (decrement * rate * rate < NEGLIGIBLE_DECREMENT) | (decrement < 1e-10)
-        if c:
-            reach = np.abs(a * sizes[:, None, :]).max(axis=-1)
-            miss = np.where(fit.compliance == 0, np.abs(gap), 0.0)
-            settled &= (miss <= SMALL_MISS * reach).all(axis=-1)
-        settled = settled | (relative < ROUNDING_STEP)
-        previous = np.where(plain, decrement, np.inf)
-        done: BoolArray = np.asarray(settled & plain & sound)
+        settled = _settled(next_, previous, plain)
+        previous = np.where(plain, next_.decrement, np.inf)
         if better.all():
             z, found = trial, tried
         else:
@@ -287,9 +307,9 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         if damping.any() or not better.all():
             damping = np.where(better, damping / 8, np.maximum(8 * damping, LEAST_DAMPING))
             # A damped step that has come to rest is looked at once more without damping.
-            rest = ~sound | (damping < LEAST_DAMPING / 8) | (settled & ~plain)
-            damping = np.where(rest, 0.0, damping)
-        stopped: BoolArray = np.asarray(done | ~sound | (damping > MOST_DAMPING))
+            damping = np.where((damping < LEAST_DAMPING / 8) | (settled & ~plain), 0.0, damping)
+        done: BoolArray = np.asarray(settled & plain & next_.sound)
+        stopped: BoolArray = np.asarray(done | ~next_.sound | (damping > MOST_DAMPING))
         if not stopped.any():
             continue
         z_all[rows] = z
@@ -302,6 +322,20 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         fit = fit.samples(going)
     z_all[rows] = z
     return Solution(z_all, converged)
+
+
+def _settled(of: _Step, previous: FloatArray, plain: BoolArray) -> BoolArray:
+    """Whether nothing is left to gain but what the step taken with the covariance brings.
+
+    Steps shrink by a steady factor: this one and the last tell what two more
+    would leave.
+    """
+    known = plain & (previous > 0)
+    rate = np.where(known, of.decrement / np.where(known, previous, 1.0), 1.0)
+    left = of.decrement * rate * rate
+    small = (of.decrement < SMALL_DECREMENT) & (left < NEGLIGIBLE_DECREMENT)
+    small |= of.decrement < VERY_SMALL_DECREMENT
+    return np.asarray((small & of.met) | (of.relative < ROUNDING_STEP))
 
 
 def _hard_weights(fit: Fit, multipliers: FloatArray) -> tuple[FloatArray, FloatArray]:
