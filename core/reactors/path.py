@@ -206,14 +206,13 @@ class ReactionPath:
                 return along, np.ones((1, 1))
             if self.at_equilibrium.all():
                 return along, -np.expm1(self._ln_opposing(place, rows))
-            if not self.at_equilibrium.any():
-                return along, -np.expm1(self.opposing.ln_value(absolute, rows))
-            from_equilibrium = rows(self.at_equilibrium.astype(float)) > 0
-            ln_opposing = np.where(
-                from_equilibrium,
-                self._ln_opposing(place, rows),
-                self.opposing.ln_value(absolute, rows),
-            )
+            ln_opposing = self.opposing.ln_value(absolute, rows)
+            # Substances of both sides are absent: the one rate is as zero as the other.
+            ln_opposing = np.where(np.isnan(ln_opposing), 0.0, ln_opposing)
+            if self.at_equilibrium.any():
+                from_equilibrium = rows(self.at_equilibrium.astype(float)) > 0
+                near = self._ln_opposing(place, rows)
+                ln_opposing = np.where(from_equilibrium, near, ln_opposing)
             return along, -np.expm1(ln_opposing)
 
     def _ln_opposing(self, place: Place, rows: Rows) -> FloatArray:
@@ -286,16 +285,23 @@ class _FromLimit:
     """L_j less its value at the limit."""
 
     def __init__(self, path: ReactionPath, place: Place, rows: Rows) -> None:
-        self.account, self.left, self.rows = path.account, place.left, rows
+        self.account, self.place, self.rows = path.account, place, rows
         self.base: FloatArray = np.zeros((1, 1))
         if path.volume_changes:
             self.base = -self(-1)
 
     def __call__(self, j: int) -> FloatArray:
-        if self.account.trends[j] is Trend.STILL:
+        account, place, rows = self.account, self.place, self.rows
+        trend = account.trends[j]
+        if trend is Trend.STILL:
             return self.base
-        step = self.rows(-self.account.change[:, j] / self.account.end[:, j]) * self.left
-        return self.base + np.log1p(step)
+        end = account.end[:, j]
+        near = np.log1p(rows(-account.change[:, j] / end) * place.left)
+        if trend is Trend.FALLS:
+            return self.base + near
+        # What rises begins with little or nothing, known best from what is there.
+        amount = account.amounts(j, place.gone, place.left, rows)
+        return self.base + np.where(place.gone < 0.5, np.log(amount / rows(end)), near)
 
 
 def _rows(case: IndexArray, n: int) -> Rows:
@@ -375,7 +381,7 @@ def reaction_path(
     if ratio is not None:
         smallest, product = _reach(start, slope)
         onward, unmoved = _direction(ratio, start, np.log(c0), largest)
-        ahead = np.where(onward > 0, largest, np.where(onward < 0, -smallest, 0.0))
+        ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
         exhausted = np.where(onward < 0, product, reactant)
         opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
         if (onward < 0).any():
@@ -515,7 +521,7 @@ def _reach(start: FloatArray, consumed: FloatArray) -> tuple[FloatArray, IndexAr
     substances = slice(0, start.shape[1] - 2)
     rate = consumed[0, substances]
     lasts = np.full((len(start), rate.size), np.inf)
-    lasts[:, rate > 0] = start[:, substances][:, rate > 0] / rate[rate > 0]
+    np.divide(start[:, substances], rate, out=lasts, where=rate > 0)
     first: IndexArray = lasts.argmin(axis=1)
     return lasts[np.arange(len(start)), first], first
 
@@ -616,7 +622,7 @@ def _check_reach(reactions: ReactionSet, feed: Stream, law: PowerLaw, path: Reac
         s = orders.shape[1]
         absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & complete
         law.check_absences(reactions, 0, absent, orders)
-    if (account.end[:, -1] == 0).any() and (account.end[:, -1:] == 0)[complete].any():
+    if ((account.end[:, -2:] == 0) & complete).any():
         raise refuse(
             "phase-vanishes",
             ("target", "conversion"),

@@ -289,14 +289,20 @@ def _kink(path: ReactionPath, factor: FlooredFactor) -> FloatArray:
 
 
 def does_not_start(path: ReactionPath, reactions: ReactionSet, i: int) -> Exception:
-    """Return the refusal of a case whose rate is zero for want of a substance."""
+    """Return the refusal of a case whose rate is zero, for want of a substance or altogether."""
     exponents = path.rate.exponents[i, :-1]
-    absent = (path.account.start[i, :-2] == 0) & (exponents > 0)
-    where = reactions.names[int(np.flatnonzero(absent)[0])] if absent.any() else "the feed"
+    absent = np.flatnonzero((path.account.start[i, :-2] == 0) & (exponents > 0))
+    if absent.size == 0:
+        return refuse(
+            "reaction-does-not-start",
+            ("reactions", reactions.reactions[0].id, "rate"),
+            "the rate is too small to be told from zero, so that nothing reacts; check the "
+            "constant, the orders and their units",
+        )
     return refuse(
         "reaction-does-not-start",
         ("feed", "flows"),
         "the rate depends on {substance}, of which the feed holds none, so that nothing begins to "
         "react; feed some of it, recycle product, or use a stirred tank if it is a product",
-        substance=where,
+        substance=reactions.names[int(absent[0])],
     )

@@ -39,9 +39,10 @@ _SLOPE_STEP = 1e-5
 
 @dataclass(frozen=True, eq=False)
 class _March:
-    """States of the tanks from the last to the first, and X/X_limit where the march ends.
+    """States of the tanks from the last to the first, and where the march ends.
 
-    Of shape (m, q) each; ``end`` is above zero while the tanks are too small.
+    Of shape (m, q) each. ``end`` is X_0/X_limit, above zero while the tanks are
+    too small; where fewer tanks would do, it is that of the target, negative.
     """
 
     left: list[FloatArray]
@@ -119,6 +120,8 @@ def _size(problem: SizingProblem, number: int) -> Sizing:
     left, gone, rates = (
         np.concatenate(part[::-1], axis=1) for part in (march.left, march.gone, march.rate)
     )
+    # What the feed's own rate of zero leaves idle is found to rounding, on either side of zero.
+    gone = np.maximum(gone, 0.0)
     volume = each * path.key_flow * np.abs(path.limit)
     ratio = path.volume_ratio(_place(case, left, gone))
     v0 = path.key_flow / path.key_concentration
@@ -166,11 +169,12 @@ def _march(path: ReactionPath, case: IndexArray, each: FloatArray, number: int) 
     each : ndarray, shape (m, q)
         Size of each tank as V/(F_A0 X_limit), m3 s/mol.
 
-    Once the feed is passed (``gone`` not above zero) a state stays where it is.
+    Once the feed is passed (``gone`` not above zero) the march stands still.
     """
     left: FloatArray = np.broadcast_to(path.target_left[case, None], each.shape)
     gone: FloatArray = np.broadcast_to(path.target_gone[case, None], each.shape)
     lefts, gones, rates = [], [], []
+    going = np.ones(each.shape, dtype=bool)
     for _ in range(number):
         going = gone > 0
         rate = path.rate_at(_place(case, np.where(going, left, 1.0), np.where(going, gone, 0.0)))
@@ -179,7 +183,8 @@ def _march(path: ReactionPath, case: IndexArray, each: FloatArray, number: int) 
         rates.append(rate)
         step = np.where(going, each * rate, 0.0)
         left, gone = left + step, gone - step
-    return _March(lefts, gones, rates, gone)
+    end = np.where(going, gone, -path.target_gone[case, None])
+    return _March(lefts, gones, rates, end)
 
 
 def _smallest(
@@ -198,14 +203,14 @@ def _smallest(
         if short.all():
             break
         lower = np.where(short, lower, 0.5 * lower)
-    ln_lower, ln_upper = np.log(lower), np.log(one_tank)
+    # A trace beyond the single tank's volume, where the march has passed the feed for certain.
+    ln_lower, ln_upper = np.log(lower), np.log(one_tank) + 1e-9
     low, high, several = ln_lower.copy(), ln_upper.copy(), np.zeros(len(moves), dtype=bool)
     block = max(1, _SCAN_BLOCK // _SCAN)
     for first in range(0, len(moves), block):
         rows = slice(first, first + block)
         grid = np.linspace(ln_lower[rows], ln_upper[rows], _SCAN, axis=1)
         enough = _march(path, moves[rows], np.exp(grid), number).end <= 0
-        enough[:, -1] = True
         k, at = enough.argmax(axis=1), np.arange(len(grid))
         low[rows], high[rows] = grid[at, np.maximum(k - 1, 0)], grid[at, k]
         several[rows] = (np.diff(enough.astype(int), axis=1) != 0).sum(axis=1) > 1
@@ -232,6 +237,17 @@ def _notes(
                 "several-volumes",
                 "more than one volume reaches the target, because the rate rises with conversion "
                 "over part of the way; the smallest is given",
+            )
+        )
+    idle = (gone <= 1e-12 * path.target_gone[:, None]) & (path.target != 0)[:, None]
+    if idle.any():
+        notes.append(
+            Note(
+                "idle-tanks",
+                "the first {count} tanks stand without conversion, because the feed alone does "
+                "not react and what they hold is washed out; feed some product, or use fewer tanks",
+                severity="warning",
+                facts={"count": int(idle.sum(axis=1).max())},
             )
         )
     unstable = _unstable(path, left, gone)

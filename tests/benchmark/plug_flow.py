@@ -47,9 +47,10 @@ def run() -> list[tuple[str, float, float]]:
     groups = draw(SERIES)
     rng = np.random.default_rng(1)
     weights = np.array([group.size for group in groups]) / sum(group.size for group in groups)
-    sampled = []
-    for g in rng.choice(len(groups), SAMPLED, p=weights):
-        sampled.append((groups[g], int(rng.integers(groups[g].size))))
+    sampled = [
+        (groups[g], int(rng.integers(groups[g].size)))
+        for g in rng.choice(len(groups), SAMPLED, p=weights)
+    ]
     one = [group.problem(i) for group, i in sampled]
     all_of = [group.problem() for group in groups]
     scripts, singles, series = [], [], []

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+
 import mpmath as mp
 import numpy as np
 
@@ -22,7 +24,13 @@ def reference(group: Group, i: int) -> mp.mpf:
         eps = y / total * (b - 1)
         c0 = mp.mpf(PRESSURE) / (mp.mpf(GAS_CONSTANT) * TEMPERATURE) * y / total
         k, n, x = (mp.mpf(float(a[i])) for a in (group.k, group.order, group.conversion))
-        key, product = (lambda z: c0 * (1 - z) / (1 + eps * z)), (lambda z: c0 * b * z / (1 + eps * z))
+
+        def key(z: mp.mpf) -> mp.mpf:
+            return c0 * (1 - z) / (1 + eps * z)
+
+        def product(z: mp.mpf) -> mp.mpf:
+            return c0 * b * z / (1 + eps * z)
+
         if group.equilibrium is None:
             limit = mp.mpf(1)
 
@@ -44,7 +52,7 @@ def reference(group: Group, i: int) -> mp.mpf:
         return y * mp.quad(integrand, mp.linspace(0, end, 5))
 
 
-def _bisect(f: object) -> mp.mpf:
+def _bisect(f: Callable[[mp.mpf], mp.mpf]) -> mp.mpf:
     low, high = mp.mpf(0), mp.mpf(1)
     for _ in range(105):
         middle = (low + high) / 2

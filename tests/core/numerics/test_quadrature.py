@@ -91,7 +91,9 @@ def test_a_case_does_not_depend_on_its_company():
 
     together = integrate(f, np.zeros(3000), np.full(3000, 2.0)).values
     for i in (0, 1, 1500, 2999):
-        alone = integrate(lambda _, x, i=i: x ** p[i] * np.exp(-3 * x), np.zeros(1), np.array([2.0]))
+        alone = integrate(
+            lambda _, x, i=i: x ** p[i] * np.exp(-3 * x), np.zeros(1), np.array([2.0])
+        )
         assert_allclose(together[i], alone.values[0], rtol=1e-15)
 
 

@@ -24,7 +24,7 @@ def test_constant_is_the_number_itself():
 def test_arrhenius_against_thirty_digits():
     with mp.workdps(30):
         t = mp.mpf(625.5)
-        exact = mp.mpf(3.2e9) * t**mp.mpf(0.7) * mp.exp(-mp.mpf(112e3) / (mp.mpf(R) * t))
+        exact = mp.mpf(3.2e9) * t ** mp.mpf(0.7) * mp.exp(-mp.mpf(112e3) / (mp.mpf(R) * t))
     assert_allclose(Arrhenius(3.2e9, 112e3, 0.7).at(625.5), float(exact), rtol=1e-14)
 
 
@@ -37,7 +37,9 @@ def test_known_at_one_temperature():
     with mp.workdps(30):
         t = mp.mpf(600.0 + 1e-6)
         exact = mp.mpf(0.05) * mp.exp(mp.mpf(90e3) / mp.mpf(R) * (1 / mp.mpf(600) - 1 / t))
-    assert_allclose(reference.at(600.0 + 1e-6) / 0.05 - 1, float(exact / mp.mpf(0.05) - 1), rtol=1e-7)
+    assert_allclose(
+        reference.at(600.0 + 1e-6) / 0.05 - 1, float(exact / mp.mpf(0.05) - 1), rtol=1e-7
+    )
 
 
 def test_over_many_temperatures():

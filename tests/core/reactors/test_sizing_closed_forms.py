@@ -95,9 +95,9 @@ def test_second_order_gas_at_constant_pressure():
     c0 = 2e5 / (GAS_CONSTANT * 500.0)
     eps, x, k = 0.5, 0.9, 1e-3
     law = power_law(reactions, {"A": 2}, k)
-    expected = (
-        2 * eps * (1 + eps) * np.log1p(-x) + eps**2 * x + (eps + 1) ** 2 * x / (1 - x)
-    ) / (k * c0)
+    expected = (2 * eps * (1 + eps) * np.log1p(-x) + eps**2 * x + (eps + 1) ** 2 * x / (1 - x)) / (
+        k * c0
+    )
     assert_allclose(size(reactions, feed, law, x, PlugFlow()).space_time, expected, rtol=TIGHT)
 
 
@@ -197,9 +197,7 @@ def test_activity_and_effectiveness_scale_the_rate_both_ways():
     reactions = reaction_set({"A": -1, "R": 1})
     feed = liquid(reactions, {"A": 1000})
     plain = power_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0))
-    scaled = power_law(
-        reactions, {"A": 1}, 0.01, reverse=k_c(3.0), activity=0.5, effectiveness=0.4
-    )
+    scaled = power_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0), activity=0.5, effectiveness=0.4)
     before = size(reactions, feed, plain, 0.7, PlugFlow())
     after = size(reactions, feed, scaled, 0.7, PlugFlow())
     assert_allclose(after.size, 5 * before.size, rtol=TIGHT)

@@ -46,9 +46,7 @@ def problem(flows, a, b, ln_k, share, reactor, order=range(5)):
     return SizingProblem(reactions, key, feed, law, share * float(limit.conversion), reactor)
 
 
-cases = st.tuples(
-    st.tuples(*[amounts] * 5), orders, orders, st.floats(-20, 20), shares, reactors
-)
+cases = st.tuples(st.tuples(*[amounts] * 5), orders, orders, st.floats(-20, 20), shares, reactors)
 
 
 @given(cases)
@@ -133,9 +131,7 @@ def test_many_cases_at_once_are_the_single_ones():
 
     def at(rows):
         feed = gas(reactions, {}, 600.0, 1e6)
-        feed = type(feed)(
-            flows[rows], feed.in_phase, "gas", temperature=600.0, pressure=1e6
-        )
+        feed = type(feed)(flows[rows], feed.in_phase, "gas", temperature=600.0, pressure=1e6)
         reverse = ByAffinity(EquilibriumConstant("pressure", Constant(k_p[rows])))
         return feed, PowerLaw(0, law_orders[rows], Constant(k[rows]), reverse=reverse)
 

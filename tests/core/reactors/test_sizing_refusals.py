@@ -90,6 +90,20 @@ def test_a_missing_reactant():
     assert "holds no B" in str(fault)
 
 
+def test_nothing_that_could_react_takes_no_volume():
+    two = reaction_set({"A": -1, "B": -1, "R": 1})
+    law = power_law(
+        two,
+        {"A": 1, "B": 1},
+        reverse=ByAffinity(EquilibriumConstant("concentration", Constant(0.01))),
+    )
+    feed = liquid(two, {"A": 100})
+    refusal("target-out-of-reach", TARGET, two, feed, law, 0.1, PlugFlow())
+    found = size(two, feed, law, 0.0, PlugFlow())
+    assert found.size == found.outlet_rate == found.limit.conversion == 0
+    assert not found.limit.at_equilibrium
+
+
 def test_of_several_cases_the_ones_out_of_reach_are_named():
     with pytest.raises(Refused) as raised:
         size(A, FEED, FIRST, np.array([0.5, 1.5, 0.9, -2.0]), PlugFlow())
@@ -201,6 +215,21 @@ def test_no_gas_at_one_end_or_the_other():
     zero_order = power_law(burning, {})
     refusal("phase-vanishes", ("feed",), burning, gas(burning, {"S": 1}), zero_order, 0.5,
             PlugFlow())  # fmt: skip
+
+
+def test_a_gas_that_a_closed_vessel_loses():
+    solid = reaction_set({"A": -1, "S": 1}, condensed=("S",))
+    law = power_law(solid, {})
+    charge = gas(solid, {"A": 1}, batch=True)
+    for hold in ("volume", "pressure"):
+        refusal("phase-vanishes", TARGET, solid, charge, law, 1.0, Batch(hold))
+    assert size(solid, charge, law, 0.999, Batch()).size > 0
+
+
+def test_a_rate_that_is_zero_to_the_last_digit():
+    law = power_law(A, {"A": -150})
+    where = ("reactions", "r1", "rate")
+    refusal("reaction-does-not-start", where, A, FEED, law, 0.5, PlugFlow())
 
 
 def test_a_rate_without_number():

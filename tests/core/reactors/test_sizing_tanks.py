@@ -114,7 +114,9 @@ def test_smallest_of_several_volumes(product, order, number, x, several):
     taus = np.geomspace(1e-3, x / rate(x), 20_001)
     over = start(taus) <= 1e-12
     first = int(over.argmax())
-    expected = brentq(lambda t: float(start(t)), taus[first - 1], taus[first], xtol=1e-15, rtol=1e-14)
+    expected = brentq(
+        lambda t: float(start(t)), taus[first - 1], taus[first], xtol=1e-15, rtol=1e-14
+    )
     found = size(ISOMERS, feed, law, x, TanksInSeries(number))
     assert_allclose(found.space_time, number * expected, rtol=1e-9)
     assert (np.diff(over.astype(int)) != 0).sum() > 1 or not several
@@ -144,3 +146,28 @@ def test_many_cases_are_the_single_ones(number):
         alone = size(ISOMERS, feed, law, float(x[i]), TanksInSeries(number))
         assert_allclose(together.size[i], alone.size, rtol=1e-12)
         assert_allclose(together.tanks.conversion[i], alone.tanks.conversion, rtol=1e-10)
+
+
+def test_tanks_that_stay_idle_are_named():
+    # r = k (1 - X) X^2 and no product in the feed: below X = 1/2 only the last tank can work.
+    law = power_law(ISOMERS, {"A": 1, "R": 2}, 1e-6)
+    feed = liquid(ISOMERS, {"A": 1000})
+    one = size(ISOMERS, feed, law, 0.2, StirredTank())
+    three = size(ISOMERS, feed, law, 0.2, TanksInSeries(3))
+    assert_allclose(three.tanks.volume, one.size, rtol=1e-12)
+    assert_allclose(three.tanks.conversion, [0, 0, 0.2], atol=1e-14)
+    assert "idle-tanks" in codes(three)
+    assert "idle-tanks" not in codes(one)
+
+
+def test_first_crossing_close_to_the_single_tank():
+    # A rate that rises all the way leaves almost everything to the last tank; the balances hold.
+    reactions = reaction_set({"A": -1, "R": 0.5})
+    law = power_law(reactions, {"R": 2}, 1e-2, driving="mole-fraction")
+    feed = gas(reactions, {"A": 7.47, "R": 0.269}, 600.0, 1e6)
+    for number in (2, 3, 10):
+        found = size(reactions, feed, law, 0.998, TanksInSeries(number))
+        before = np.concatenate([[0], found.tanks.conversion[:-1]])
+        gained = 7.47 * (found.tanks.conversion - before)
+        assert (gained > 0).all()
+        assert_allclose(found.tanks.volume * found.tanks.rate, gained, rtol=1e-9)
