@@ -65,10 +65,10 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("outlet",) if problem.outlet else ("feed",),
             facts=facts,
         )
-    sides = [("feed", account.feed_map)]
+    sides = [("feed", "fed", account.feed_map)]
     if problem.outlet:
-        sides.append(("outlet", account.outlet_map))
-    for side, forms in sides:
+        sides.append(("outlet", "leaving", account.outlet_map))
+    for side, way, forms in sides:
         flows = found.z @ forms.T
         if not (flows < 0).any():
             continue
@@ -79,12 +79,12 @@ def remarks(found: Estimate) -> Iterator[Note]:
             words, facts = counted(below[:, i])
             yield Note(
                 "negative-flow",
-                "the readings put the flow of {substance} below zero by more than twice its"
+                "the readings put the flow of {substance} {way} below zero by more than twice its"
                 " uncertainty, which cannot be: look for a wrong reading, basis, removal or a"
                 " missing reaction" + words,
                 severity="warning",
                 subject=(side, names[i]),
-                facts={"substance": names[i], **facts},
+                facts={"substance": names[i], "way": way, **facts},
             )
     yield from _removal_notes(found, counted)
 
