@@ -64,7 +64,7 @@ def ln_in_range(
     ------
     Refused
         ``condition-missing``: no temperature for a form that needs one.
-        ``out-of-range``: a parameter is not above zero or not finite.
+        ``impossible-value``: a parameter is not above zero or not finite.
         ``rate-constant-out-of-range``: the value overflows or vanishes.
     """
     ln = constant.ln_at(temperature, subject)
@@ -222,7 +222,7 @@ def _out_of_range(
     array: FloatArray, good: np.ndarray, subject: Subject, what: str, allowed: str
 ) -> Exception:
     return refuse(
-        "out-of-range",
+        "impossible-value",
         subject,
         "the {what} is {found} in SI units; {allowed} is needed",
         what=what,

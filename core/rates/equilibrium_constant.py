@@ -84,7 +84,7 @@ class EquilibriumConstant:
         Refused
             ``equilibrium-constant-does-not-fit``: a K of this kind says nothing
             about this reaction in this phase. ``condition-missing``,
-            ``out-of-range``.
+            ``impossible-value``.
         """
         nu = np.where(stream.in_phase, reactions.nu[reaction], 0.0)
         if stream.phase == "liquid":

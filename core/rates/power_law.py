@@ -107,7 +107,7 @@ class PowerLaw:
         Refused
             ``rate-of-absent-substance``, ``order-outside-phase``,
             ``driving-needs-gas``, ``floor-without-negative-order``,
-            ``out-of-range``.
+            ``impossible-value``.
         """
         subject = rate_subject(reactions, reaction)
         names = reactions.names
@@ -183,7 +183,7 @@ class PowerLaw:
         Raises
         ------
         Refused
-            See :func:`core.rates.constants.at`; ``out-of-range`` for a factor.
+            See :func:`core.rates.constants.at`; ``impossible-value`` for a factor.
         """
         subject = rate_subject(reactions, reaction)
         product = self._one_way(self.constant, self.orders, stream, (*subject, "constant"))

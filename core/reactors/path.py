@@ -339,7 +339,7 @@ def reaction_path(
     Refused
         ``one-reaction-only``, ``key-absent``, ``key-not-consumed``,
         ``flow-negative``, ``condition-missing``, ``phase-vanishes``,
-        ``target-out-of-reach``, ``out-of-range``, and what the rate law
+        ``target-out-of-reach``, ``impossible-value``, and what the rate law
         refuses.
     """
     _check(reactions, key, feed, law)
@@ -471,7 +471,7 @@ def _check_target(asked: FloatArray, lead: tuple[int, ...]) -> None:
     bad = np.flatnonzero(~np.isfinite(asked))
     if bad.size:
         raise refuse(
-            "out-of-range",
+            "impossible-value",
             target_subject(int(bad[0]), lead),
             "the target conversion is not a number",
         )

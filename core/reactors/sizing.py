@@ -179,7 +179,7 @@ def size_reactor(problem: SizingProblem, points: int = 0) -> Sizing:
         ``flow-negative``, ``condition-missing``, ``phase-vanishes``,
         ``feed-does-not-fit-reactor``, ``target-out-of-reach``,
         ``reaction-does-not-start``, ``negative-order-needs-floor``,
-        ``out-of-range``, and what :mod:`core.rates` and :mod:`core.numerics`
+        ``impossible-value``, and what :mod:`core.rates` and :mod:`core.numerics`
         refuse.
     """
     return problem.reactor.size(problem, points)

@@ -76,7 +76,7 @@ class TanksInSeries:
         """
         if not 1 <= self.number <= MOST_TANKS:
             raise refuse(
-                "out-of-range",
+                "impossible-value",
                 ("reactor", "number"),
                 "{number} tanks are asked for; 1 to {most} are allowed, beyond which they differ "
                 "little from plug flow",

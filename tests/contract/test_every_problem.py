@@ -331,6 +331,24 @@ case(
     "/outlet/analysis/values/CO2",
 )
 case(
+    "element-not-named",
+    (
+        CONVERSION,
+        {
+            "reactions": ["SO2 + 1/2 O2 -> SO3"],
+            "key": "SO2",
+            "feed": {"phase": "gas", "flows": {"SO2": "1 mol/s", "O2": "1 mol/s"}},
+            "outlet": {
+                "phase": "gas",
+                "analysis": {"basis": "mole", "values": {"SO2": "10 %"}},
+            },
+            "yields": {"basis": "element"},
+        },
+    ),
+    "/yields",
+)
+case("element-not-in-key", conversion(yields={"basis": "element", "element": "N"}), "/yields")
+case(
     "limit-out-of-range",
     conversion(outlet__analysis__values__CO="<0 %"),
     "/outlet/analysis/values/CO",

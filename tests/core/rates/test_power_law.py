@@ -155,16 +155,16 @@ def test_floor_that_would_do_nothing_or_makes_no_sense():
     fault = refusal(power_law(REACTIONS, {"A": 1}, floors={"A": 1.0}))
     assert (fault.code, fault.subject) == ("floor-without-negative-order", (*RATE, "floor", "A"))
     fault = refusal(power_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": -1.0}))
-    assert (fault.code, fault.subject) == ("out-of-range", (*RATE, "floor", "R"))
+    assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "floor", "R"))
     refusal(power_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": np.nan}))
 
 
 @pytest.mark.parametrize("bad", [0.0, -1.0, np.nan])
 def test_factors_above_zero(bad):
     fault = refusal(power_law(REACTIONS, {"A": 1}, activity=bad))
-    assert (fault.code, fault.subject) == ("out-of-range", (*RATE, "activity"))
+    assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "activity"))
     fault = refusal(power_law(REACTIONS, {"A": 1}, effectiveness=bad))
-    assert (fault.code, fault.subject) == ("out-of-range", (*RATE, "effectiveness"))
+    assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "effectiveness"))
     affinity = ByAffinity(EquilibriumConstant("pressure", Constant(1.0)), bad)
     fault = refusal(power_law(REACTIONS, {"A": 1}, reverse=affinity))
     assert fault.subject == (*RATE, "reversible", "affinity_exponent")
@@ -172,7 +172,7 @@ def test_factors_above_zero(bad):
 
 def test_orders_must_be_numbers():
     fault = refusal(power_law(REACTIONS, {"A": np.nan}))
-    assert (fault.code, fault.subject) == ("out-of-range", (*RATE, "orders"))
+    assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "orders"))
 
 
 @pytest.mark.parametrize(

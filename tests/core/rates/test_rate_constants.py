@@ -64,22 +64,22 @@ def test_missing_temperature(form):
 
 @pytest.mark.parametrize("t", [0.0, -5.0, np.nan, np.inf])
 def test_impossible_temperature(t):
-    assert refusal(lambda: Arrhenius(1e6, 50e3).at(t)).code == "out-of-range"
+    assert refusal(lambda: Arrhenius(1e6, 50e3).at(t)).code == "impossible-value"
 
 
 @pytest.mark.parametrize("k", [0.0, -1.0, np.nan, np.inf])
 def test_impossible_constant(k):
     fault = refusal(lambda: Constant(k).at(300.0, ("rate", "constant")))
-    assert (fault.code, fault.subject) == ("out-of-range", ("rate", "constant"))
-    assert refusal(lambda: ConstantAt(300.0, k, 1e4).at(300.0)).code == "out-of-range"
-    assert refusal(lambda: Arrhenius(k, 1e4).at(300.0)).code == "out-of-range"
+    assert (fault.code, fault.subject) == ("impossible-value", ("rate", "constant"))
+    assert refusal(lambda: ConstantAt(300.0, k, 1e4).at(300.0)).code == "impossible-value"
+    assert refusal(lambda: Arrhenius(k, 1e4).at(300.0)).code == "impossible-value"
 
 
 @pytest.mark.parametrize("bad", [np.nan, np.inf])
 def test_impossible_energy(bad):
-    assert refusal(lambda: Arrhenius(1.0, bad).at(300.0)).code == "out-of-range"
-    assert refusal(lambda: Arrhenius(1.0, 1e3, bad).at(300.0)).code == "out-of-range"
-    assert refusal(lambda: ConstantAt(300.0, 1.0, bad).at(300.0)).code == "out-of-range"
+    assert refusal(lambda: Arrhenius(1.0, bad).at(300.0)).code == "impossible-value"
+    assert refusal(lambda: Arrhenius(1.0, 1e3, bad).at(300.0)).code == "impossible-value"
+    assert refusal(lambda: ConstantAt(300.0, 1.0, bad).at(300.0)).code == "impossible-value"
 
 
 @pytest.mark.parametrize("energy", [3e6, -3e6])

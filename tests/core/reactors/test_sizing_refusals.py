@@ -108,7 +108,7 @@ def test_of_several_cases_the_ones_out_of_reach_are_named():
     with pytest.raises(Refused) as raised:
         size(A, FEED, FIRST, np.array([0.5, 1.5, 0.9, -2.0]), PlugFlow())
     assert [fault.subject for fault in raised.value.faults] == [(*TARGET, 1), (*TARGET, 3)]
-    refusal("out-of-range", TARGET, A, FEED, FIRST, float("nan"), PlugFlow())
+    refusal("impossible-value", TARGET, A, FEED, FIRST, float("nan"), PlugFlow())
 
 
 def test_nothing_begins_without_product():
@@ -204,7 +204,7 @@ def test_the_key():
 
 @pytest.mark.parametrize("number", [0, 101])
 def test_number_of_tanks(number):
-    refusal("out-of-range", ("reactor", "number"), A, FEED, FIRST, 0.5, TanksInSeries(number))
+    refusal("impossible-value", ("reactor", "number"), A, FEED, FIRST, 0.5, TanksInSeries(number))
 
 
 def test_no_gas_at_one_end_or_the_other():
