@@ -12,9 +12,9 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
+from core.outlet_analysis.consistency import WithoutSuspects
 from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import FURTHER, VOLUME
-from core.outlet_analysis.testing import WithoutSuspects
 
 
 @dataclass(frozen=True, eq=False)

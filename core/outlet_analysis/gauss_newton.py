@@ -178,7 +178,10 @@ def _system(
 ) -> _System:
     diagonal = h.diagonal(axis1=1, axis2=2)
     seen = diagonal > 0
-    size = np.where(seen, 1 / np.sqrt(np.where(seen, diagonal, 1.0)), natural)
+    if seen.all():
+        size = 1 / np.sqrt(diagonal)
+    else:
+        size = np.where(seen, 1 / np.sqrt(np.where(seen, diagonal, 1.0)), natural)
     n, c = h.shape[-1], a.shape[1]
     scaled = h * size[:, :, None]
     scaled *= size[:, None, :]

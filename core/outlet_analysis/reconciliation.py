@@ -18,14 +18,7 @@ from scipy.special import chdtrc
 from core.arrays import FloatArray
 from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
-from core.outlet_analysis.estimate import Estimate, ReadingTable
-from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
-from core.outlet_analysis.observability import TOUCHED
-from core.outlet_analysis.preparation import Block, prepare
-from core.outlet_analysis.readings import BELOW
-from core.outlet_analysis.remarks import remarks
-from core.outlet_analysis.solving import Fitted, fit_block
-from core.outlet_analysis.testing import (
+from core.outlet_analysis.consistency import (
     DETECTABLE,
     Examined,
     WithoutSuspects,
@@ -33,6 +26,13 @@ from core.outlet_analysis.testing import (
     suspects,
     without_suspects,
 )
+from core.outlet_analysis.estimate import Estimate, ReadingTable
+from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
+from core.outlet_analysis.observability import TOUCHED
+from core.outlet_analysis.preparation import Block, prepare
+from core.outlet_analysis.readings import BELOW
+from core.outlet_analysis.remarks import remarks
+from core.outlet_analysis.solving import Fitted, fit_block
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
 

@@ -86,6 +86,18 @@ def remarks(found: Estimate) -> Iterator[Note]:
                 subject=(side, names[i]),
                 facts={"substance": names[i], "way": way, **facts},
             )
+    if samples is None:
+        numbers = found.readings.suspect_set
+        sizes = np.bincount(numbers[numbers > 0], minlength=1)[1:]
+        ways, shown = int(np.prod(sizes)), len(found.without_suspects)
+        if len(sizes) and shown < ways:
+            yield Note(
+                "alternatives-not-all-given",
+                "of {ways} ways to leave out one reading of each set in doubt, {shown} are given;"
+                " the others are too many, or leave no account that comes near the readings",
+                subject=("reconciliation",),
+                facts={"ways": ways, "shown": shown},
+            )
     yield from _removal_notes(found, counted)
 
 

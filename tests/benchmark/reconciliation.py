@@ -166,10 +166,10 @@ def run() -> list[tuple[str, float, float]]:
     by_differences_all, everything = medians(differences, one_with_results, times=7)
     each = len(few)
     return [
-        ("series, to trf by differences", by_differences / each * SAMPLES / in_series, 250.0),
-        ("series, to trf from the design point", by_design / each * SAMPLES / in_series_too, 100.0),
-        ("series, to lm with Jacobian", by_slopes / each * SAMPLES / in_series_again, 40.0),
-        ("one sample, to trf by differences", by_differences_one / each / single, 4.0),
-        ("one with closures, to trf by differences", by_differences_all / each / everything, 2.0),
-        ("series, thousand samples a second", SAMPLES / in_series / 1000, 40.0),
+        ("series, to trf by differences", by_differences / each * SAMPLES / in_series, 70.0),
+        ("series, to trf from the design point", by_design / each * SAMPLES / in_series_too, 40.0),
+        ("series, to lm with Jacobian", by_slopes / each * SAMPLES / in_series_again, 14.0),
+        ("one sample, to trf by differences", by_differences_one / each / single, 1.5),
+        ("one with closures, to trf by differences", by_differences_all / each / everything, 0.8),
+        ("series, thousand samples a second", SAMPLES / in_series / 1000, 30.0),
     ]

@@ -21,12 +21,12 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.special import chdtri
 
+from core.outlet_analysis.consistency import DETECTABLE, sidak_limit
 from core.outlet_analysis.conversion import ConversionResults, conversion_results
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, curvature, least_squares
 from core.outlet_analysis.reconciliation import estimate, estimate_feed
-from core.outlet_analysis.testing import DETECTABLE, sidak_limit
 from core.reactions.reaction_set import ReactionSet
 from tests.core.outlet_analysis.plant import (
     KMOL_H,
