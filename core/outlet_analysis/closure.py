@@ -17,13 +17,11 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Note
 from core.outlet_analysis.account import Account, release_outlet
 from core.outlet_analysis.estimate import Estimate
-from core.outlet_analysis.preparation import prepare
+from core.outlet_analysis.preparation import BLOCK, prepare
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
 from core.outlet_analysis.solving import Fitted, fit_block
 from core.reactions.elements import element_matrix
-
-BLOCK = 2048
 
 
 @dataclass(frozen=True, eq=False)

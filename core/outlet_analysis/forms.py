@@ -14,7 +14,6 @@ samples at once.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -85,13 +84,6 @@ class Forms:
         if self.constants.ndim == 1:
             return self
         return Forms(self.constants[rows], self.numerators, self.bases, self.exponents)
-
-    def readings(self, rows: Sequence[int]) -> Forms:
-        """Return some of the readings."""
-        chosen = list(rows)
-        return Forms(
-            self.constants[..., chosen], self.numerators[chosen], self.bases, self.exponents[chosen]
-        )
 
     def at(self, z: FloatArray) -> Evaluation:
         """Evaluate at ``z``, shape (N, n)."""

@@ -21,6 +21,8 @@ from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
 from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, VOLUME
 
+BLOCK = 2048
+"""Samples estimated at once: enough to fill the processor, few enough to stay in its cache."""
 SQUARE_UNDERFLOWS = 1e-150
 NEARLY_EXACT = 1e-4
 """Relative uncertainty below which a weight would drown the others."""

@@ -29,15 +29,12 @@ from core.outlet_analysis.consistency import (
 from core.outlet_analysis.estimate import Estimate, ReadingTable
 from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
 from core.outlet_analysis.observability import TOUCHED
-from core.outlet_analysis.preparation import Block, prepare
+from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
 from core.outlet_analysis.solving import Fitted, fit_block
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
-
-BLOCK = 2048
-"""Samples estimated at once: enough to fill the processor, few enough to stay in its cache."""
 
 
 def estimate(problem: AccountProblem) -> Estimate:
