@@ -1,4 +1,6 @@
-"""The account estimated from plant readings, in the order to read it:
+"""The account that fits the plant's readings best, and its uncertainty.
+
+In the order to read it:
 
 ``forms``           the one shape that every reading has, and its derivatives
 ``readings``        from metered streams to forms
