@@ -9,8 +9,7 @@ in the caller's own words.
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
 from typing import Any, NamedTuple
@@ -178,13 +177,23 @@ class EdgeMap:
             )
         )
 
-    @contextmanager
-    def locating(self) -> Iterator[None]:
+    def locating(self) -> _Locating:
         """Turn a refusal of the core raised inside into one that the caller can read."""
-        try:
-            yield
-        except Refused as refused:
-            raise self.locate(refused) from refused
+        return _Locating(self)
+
+
+class _Locating:
+    # A class of its own: one made of a generator takes several times as long.
+
+    def __init__(self, edge: EdgeMap) -> None:
+        self._edge = edge
+
+    def __enter__(self) -> None:
+        pass
+
+    def __exit__(self, _kind: object, error: BaseException | None, _trace: object) -> None:
+        if isinstance(error, Refused):
+            raise self._edge.locate(error) from error
 
 
 @lru_cache(maxsize=1024)
@@ -193,6 +202,15 @@ def scale_of(unit: str, atmospheric_pressure: float = STANDARD_ATMOSPHERE) -> Sc
     known = find_unit(unit)
     offset = atmospheric_pressure if known.gauge else known.offset
     return Scale(unit, known.factor, offset)
+
+
+# Clients use the same few units in the same places, request after request.
+@lru_cache(maxsize=1024)
+def _scales(
+    used: tuple[tuple[str, str], ...], asked: tuple[tuple[str, str], ...], pressure: float
+) -> Mapping[str, Scale]:
+    chosen = {**DEFAULT_UNITS, **dict(used), **dict(asked), "dimensionless": "1"}
+    return {name: scale_of(unit, pressure) for name, unit in chosen.items()}
 
 
 @dataclass
@@ -372,11 +390,10 @@ class RequestReader:
         edge = EdgeMap(self.places, self.scales({}), atmospheric_pressure=self.atmospheric_pressure)
         self.faults.extend(edge.locate(refused).faults)
 
-    def scales(self, report_in: Mapping[str, str]) -> dict[str, Scale]:
+    def scales(self, report_in: Mapping[str, str]) -> Mapping[str, Scale]:
         """Return how each dimension is printed: as asked, as first used, by default."""
-        chosen = {**DEFAULT_UNITS, **self.used, **report_in, "dimensionless": "1"}
-        pressure = self.atmospheric_pressure
-        return {name: scale_of(unit, pressure) for name, unit in chosen.items()}
+        used, asked = tuple(self.used.items()), tuple(report_in.items())
+        return _scales(used, asked, self.atmospheric_pressure)
 
     def finish(self, report_in: Mapping[str, str] | None) -> EdgeMap:
         """Return the edge map.

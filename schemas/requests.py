@@ -114,22 +114,24 @@ def read_reactions(
     kept = len(reader.faults)
     names: dict[str, Subject] = {}
     for stream, pointer in streams:
-        for name, path in substances_of(stream):
+        for name, place in substances_of(stream, pointer):
             if name not in names:
-                names[name] = reader.at(("substances", name), child(pointer, *path))
+                names[name] = reader.at(("substances", name), place)
     declared = {
         name: _declared(name, said, reader) for name, said in document.get("species", {}).items()
     }
     inputs = []
     for i, said in enumerate(document["reactions"]):
-        place: Subject = ("reactions", i)
+        subject: Subject = ("reactions", i)
+        pointer, id_ = child("/reactions", i), f"r{i + 1}"
         if isinstance(said, str):
-            reader.at(place, child("/reactions", i))
-            inputs.append(ReactionInput(f"r{i + 1}", said, place))
+            equation = said
+            reader.at(subject, pointer)
         else:
-            reader.at(place, child("/reactions", i, "equation"))
-            inputs.append(ReactionInput(said.get("id", f"r{i + 1}"), said["equation"], place))
-        reader.at(("reactions", inputs[-1].id), child("/reactions", i))
+            equation, id_ = said["equation"], said.get("id", id_)
+            reader.at(subject, child(pointer, "equation"))
+        inputs.append(ReactionInput(id_, equation, subject))
+        reader.at(("reactions", id_), pointer)
     try:
         reactions, notes = build_reaction_set(inputs, declared, names)
     except Refused as refused:

@@ -653,28 +653,29 @@ def _listed(pointers: list[str], most: int = 8) -> str:
     return f"{shown} and {left} more" if left > 0 else shown
 
 
-def substances_of(document: Json) -> Iterator[tuple[str, tuple[str | int, ...]]]:
-    """Yield each substance that a stream document names, and where below it."""
+def substances_of(document: Json, pointer: str) -> Iterator[tuple[str, str]]:
+    """Yield each substance that a stream document names, and where."""
     for i, inner in enumerate(document.get("streams", ())):
-        for name, path in substances_of(inner):
-            yield name, ("streams", i, *path)
+        yield from substances_of(inner, child(pointer, "streams", i))
     for form in ("flows", "amounts", "concentrations"):
         for name in document.get(form, ()):
-            yield name, (form, name)
-    analysis = document.get("analysis")
-    if analysis is None:
-        return
-    lumps = analysis.get("lumps", {})
-    for name in analysis["values"]:
+            yield name, child(pointer, form, name)
+    if "analysis" in document:
+        yield from _analysed(document["analysis"], child(pointer, "analysis"))
+
+
+def _analysed(document: Json, pointer: str) -> Iterator[tuple[str, str]]:
+    lumps = document.get("lumps", {})
+    for name in document["values"]:
         if name in lumps:
             for member in lumps[name]:
-                yield member, ("analysis", "lumps", name, member)
+                yield member, child(pointer, "lumps", name, member)
         else:
-            yield name, ("analysis", "values", name)
-    for i, entry in enumerate(analysis.get("removed", ())):
+            yield name, child(pointer, "values", name)
+    for i, entry in enumerate(document.get("removed", ())):
         if isinstance(entry, str):
-            yield entry, ("analysis", "removed", i)
+            yield entry, child(pointer, "removed", i)
         else:
-            yield entry["species"], ("analysis", "removed", i, "species")
-    if "balance" in analysis:
-        yield analysis["balance"], ("analysis", "balance")
+            yield entry["species"], child(pointer, "removed", i, "species")
+    if "balance" in document:
+        yield document["balance"], child(pointer, "balance")

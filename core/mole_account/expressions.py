@@ -3,18 +3,46 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from functools import lru_cache
+from dataclasses import dataclass
 
 from core.arrays import FloatArray
 
 
-def term(name: str, key: str, theta: float, ratio: float, *, is_key: bool) -> str:
-    """Return what stands behind F, N or C of a substance, as a function of the key's conversion.
+@dataclass(frozen=True, slots=True)
+class Term:
+    """What stands behind F, N or C of a substance, as a function of the key's conversion.
 
-    ``F_i = F_A0 (theta_i + nu_i/|nu_A| X)``; ``ratio`` is ``nu_i/|nu_A|``. A
-    substance that takes no part keeps its flow.
+    ``F_i = F_A0 (theta_i + nu_i/|nu_A| X)``. A substance that takes no part
+    keeps its flow. What does not depend on the feed is written once.
+
+    Attributes
+    ----------
+    before, after : str
+        Around theta; empty where it plays no part.
+    alone : str
+        The whole term where theta is nothing.
     """
-    return f"{key}0 {_bracket(theta, ratio, is_key)}" if ratio else f"{name}0"
+
+    before: str
+    after: str
+    alone: str
+
+    def at(self, theta: float) -> str:
+        """Return the term for a feed."""
+        if self.before and theta:
+            return f"{self.before}{theta:.6g}{self.after}"
+        return self.alone
+
+
+def term(name: str, key: str, ratio: float, *, is_key: bool) -> Term:
+    """Return the term of a substance; ``ratio`` is ``nu_i/|nu_A|``."""
+    if is_key:
+        return Term("", "", f"{key}0 (1 - X)")
+    if ratio == 0:
+        return Term("", "", f"{name}0")
+    change = _signed(ratio, "X")
+    alone = change.removeprefix("+ ").replace("- ", "-")
+    return Term(f"{key}0 (", f" {change})", f"{key}0 ({alone})")
 
 
 def volume_factors(epsilon: float, conditions: str) -> str:
@@ -45,16 +73,6 @@ def condition_factors(changes: Sequence[str]) -> str:
     )
 
 
-def _bracket(theta: float, ratio: float, is_key: bool) -> str:
-    if is_key:
-        return "(1 - X)"
-    change = _signed(ratio, "X")
-    if theta == 0:
-        return f"({change.removeprefix('+ ').replace('- ', '-')})"
-    return f"({_figure(theta)} {change})"
-
-
-@lru_cache(maxsize=1024)  # mostly the few ratios of coefficients
 def _signed(value: float, symbol: str = "") -> str:
     sign = "-" if value < 0 else "+"
     size = abs(value)

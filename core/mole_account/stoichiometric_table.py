@@ -18,6 +18,7 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fault, Note, Refused, refuse
 from core.mole_account.expressions import (
+    Term,
     condition_factors,
     extents_expression,
     term,
@@ -187,18 +188,24 @@ class _Account:
         Of the key by that reaction, -; not above zero where none consumes it.
     sizes : ndarray, shape (R, S)
         Coefficients without their signs.
+    largest_size : float
+        The largest sum of a substance's over the reactions.
     delta : float or None
         For one reaction that consumes the key.
     moles_change : bool
         Whether any reaction changes the moles in the phase.
+    terms : tuple of Term, length S
+        For one reaction that consumes the key, else empty.
     """
 
     roles: tuple[Role, ...]
     consumer: int
     consumed: float
     sizes: FloatArray
+    largest_size: float
     delta: float | None
     moles_change: bool
+    terms: tuple[Term, ...]
 
 
 # Worked out once: a plant asks about few accounts, each of them many times.
@@ -211,13 +218,22 @@ def _account(reactions: ReactionSet, key: int, in_phase: bytes) -> _Account:
     consumed = float(-nu[consumer, key])
     sizes = np.abs(nu)
     sizes.setflags(write=False)
+    one = len(nu) == 1 and consumed > 0
+    names = reactions.names
     return _Account(
         roles=_roles(nu, key),
         consumer=consumer,
         consumed=consumed,
         sizes=sizes,
-        delta=float(change[0]) / consumed if len(nu) == 1 and consumed > 0 else None,
+        largest_size=float(sizes.sum(axis=0).max()),
+        delta=float(change[0]) / consumed if one else None,
         moles_change=bool((np.abs(change) > ROUNDING * np.abs(within).sum(axis=1)).any()),
+        terms=tuple(
+            term(name, names[key], ratio, is_key=i == key)
+            for i, (name, ratio) in enumerate(zip(names, (nu[0] / consumed).tolist(), strict=True))
+        )
+        if one
+        else (),
     )
 
 
@@ -329,9 +345,19 @@ def _unknown_conditions(problem: TableProblem) -> list[Fault]:
             f"the outlet's {name} is stated and the feed's is not: state it too, so that the"
             " change is known",
         )
-        for name in ("temperature", "pressure")
-        if getattr(problem.outlet, name) is not None and getattr(problem.inlet, name) is None
+        for name, before, after in _conditions(problem)
+        if after is not None and before is None
     ]
+
+
+def _conditions(problem: TableProblem) -> tuple[tuple[str, float | None, float | None], ...]:
+    """Return each condition of the inlet, and what is stated of it at the outlet."""
+    inlet, outlet = problem.inlet, problem.outlet
+    return (
+        ("temperature", inlet.temperature, outlet.temperature),
+        ("pressure", inlet.pressure, outlet.pressure),
+        ("compressibility", inlet.compressibility, outlet.compressibility),
+    )
 
 
 def _extents(problem: TableProblem, account: _Account, reach: ConversionRange) -> FloatArray:
@@ -430,11 +456,15 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
     reactions, inlet, outlet = problem.reactions, problem.inlet, problem.outlet
     changes = extents.dot(reactions.nu)
     flows = inlet.flows + changes
-    # What rounding leaves of a substance that is used up exactly is nothing.
-    passing = inlet.flows + abs(extents).dot(account.sizes)
-    flows[abs(flows) <= ROUNDING * passing] = 0.0
+    # What rounding leaves of a substance that is used up exactly is nothing. Mostly every
+    # flow stands well above what rounding could leave of the largest.
+    furthest = max(map(abs, extents.ravel().tolist()))
+    most = max(inlet.flows.tolist()) + account.largest_size * furthest
+    if not flows.min() > ROUNDING * most:
+        passing = inlet.flows + abs(extents).dot(account.sizes)
+        flows[abs(flows) <= ROUNDING * passing] = 0.0
     phase_totals = phase_sum(flows, inlet.in_phase)
-    if not all(total > 0 for total in phase_totals.tolist()):
+    if not min(phase_totals.tolist()) > 0:
         raise refuse(
             "phase-vanishes",
             ("feed",),
@@ -445,7 +475,7 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
     pressures, volumes, error = _volumes(problem, phase_totals, temperature, z)
     unique = reactions.rank == len(reactions.reactions) or problem.extents is not None
     return States(
-        conversions=-changes[:, problem.key] / float(inlet.flows[problem.key]),
+        conversions=changes[:, problem.key] / -float(inlet.flows[problem.key]),
         extents=extents if unique else None,
         flows=flows,
         changes=changes,
@@ -491,20 +521,14 @@ def _times(values: FloatArray, factor: float) -> FloatArray:
 
 
 def _fails_because(problem: TableProblem, account: _Account) -> tuple[str, ...]:
-    inlet, outlet = problem.inlet, problem.outlet
+    inlet = problem.inlet
     if inlet.phase == "liquid" or (inlet.batch and problem.hold == "volume"):
         return ()
-    changed = (f"{name}-changes" for name in _changes(inlet, outlet))
-    return ("moles-change", *changed) if account.moles_change else tuple(changed)
-
-
-def _changes(inlet: Stream, outlet: OutletConditions) -> list[str]:
-    changed = []
-    for name in ("temperature", "pressure", "compressibility"):
-        after, before = getattr(outlet, name), getattr(inlet, name)
-        if after is not None and abs(after - before) > ROUNDING * before:
-            changed.append(name)
-    return changed
+    fails = ["moles-change"] if account.moles_change else []
+    for name, before, after in _conditions(problem):
+        if after is not None and before is not None and abs(after - before) > ROUNDING * before:
+            fails.append(f"{name}-changes")
+    return tuple(fails)
 
 
 def _no_concentrations(inlet: Stream) -> Note:
@@ -545,18 +569,14 @@ def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:
             for i, name in enumerate(names)
         ]
     held = inlet.phase == "liquid" or (batch and problem.hold == "volume")
-    epsilon = 0.0 if held else table.epsilon or 0.0
-    conditions = "" if held else condition_factors(_changes(inlet, problem.outlet))
-    factors = volume_factors(epsilon, conditions)
-    key, letter = problem.key, "N" if batch else "F"
+    changed = [cause.removesuffix("-changes") for cause in table.fails_because]
+    factors = volume_factors(0.0 if held else table.epsilon or 0.0, condition_factors(changed))
+    letter, key = "N" if batch else "F", problem.key
     in_phase = inlet.in_phase.tolist()
     known = in_phase[key] and table.states.volumetric_flows is not None
-    nu = reactions.nu[0].tolist()
-    consumed = -nu[key]
     told: list[tuple[str, str | None]] = []
-    for i, (name, theta, within) in enumerate(
-        zip(names, table.theta.tolist(), in_phase, strict=True)
-    ):
-        own = term(name, names[key], theta, nu[i] / consumed, is_key=i == key)
-        told.append((f"{letter}_{own}", f"C_{own}{factors}" if known and within else None))
+    terms = _account(reactions, key, inlet.in_phase.tobytes()).terms
+    for one, theta, within in zip(terms, table.theta.tolist(), in_phase, strict=True):
+        said = one.at(theta)
+        told.append((f"{letter}_{said}", f"C_{said}{factors}" if known and within else None))
     return told

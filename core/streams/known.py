@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import compress
 
 import numpy as np
 
@@ -113,8 +114,7 @@ def join_streams(
         ``no-flow`` when nothing flows; ``volume-contradicts-conditions``.
     """
     present = in_phase(reactions, conditions.phase)
-    total = float(phase_sum(flows, present))
-    if not total > 0:
+    if not sum(compress(flows.tolist(), present.tolist())) > 0:
         raise refuse(
             "no-flow",
             conditions.subject,
@@ -124,6 +124,7 @@ def join_streams(
     pressure = _value(conditions.pressure)
     volume, assumed = _volume(reactions, flows, streams, conditions, each)
     if conditions.phase == "gas" and volume is not None and temperature is not None:
+        total = float(phase_sum(flows, present))
         follows = conditions.compressibility * total * GAS_CONSTANT * temperature / volume
         _agree(conditions, follows, pressure)
         if pressure is None:

@@ -59,7 +59,7 @@ class Stream:
     @cached_property
     def phase_total(self) -> FloatArray:
         """Total of the substances in the stream's own phase, shape (...), mol/s."""
-        return np.asarray(phase_sum(self.flows, self.in_phase))
+        return phase_sum(self.flows, self.in_phase)
 
     @cached_property
     def volumetric_flow(self) -> FloatArray | None:
