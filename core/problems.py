@@ -425,6 +425,16 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
         "Yields on element basis count an element of the key, and the key does not hold the one"
         " named. Name one that it holds.",
     ),
+    "nowhere-to-leave": Entry(
+        "Nowhere to leave",
+        "No outlet stream can hold a substance that the account has. Name it in a stream's"
+        " analysis, or add the stream in which it leaves.",
+    ),
+    "analysis-sum": Entry(
+        "Analysis does not add up",
+        "The fractions of an analysis are far from 100 %, and nothing makes up the rest. Name a"
+        " balance or the missing substances, or correct the values.",
+    ),
     "limit-out-of-range": Entry(
         "Limit out of range",
         "A detection limit or the end of an instrument's range must be above zero, and of a"
@@ -470,6 +480,11 @@ _REACTORS: dict[str, Entry] = {
     "equilibrium-constant-unit": Entry(
         "Unit of the equilibrium constant",
         "The unit does not fit the reaction as it is written. The detail says the units expected.",
+    ),
+    "equilibrium-constant-not-used": Entry(
+        "Equilibrium constant would not be heeded",
+        "An equilibrium constant is stated beside an irreversible rate, which knows no limit. Make"
+        " the rate reversible, or leave the constant out.",
     ),
     "equilibrium-constant-does-not-fit": Entry(
         "Equilibrium constant does not fit",

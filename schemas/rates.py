@@ -83,7 +83,7 @@ class EquilibriumConstantSchema(ClosedSchema):
 class AffinitySchema(ClosedSchema):
     """Net rate = forward (1 - (Q/K)^affinity_exponent) with the reaction's equilibrium constant."""
 
-    affinity_exponent = Number(above=0, at_most=10, load_default=1.0)
+    affinity_exponent = Number(above=0, at_most=10, metadata=describe("Default: 1."))
 
 
 class ReverseSchema(ClosedSchema):
@@ -276,6 +276,14 @@ class _RateReader:
     def _reverse(self) -> ByAffinity | ReverseConstant | None:
         said = self.rate.get("reversible")
         place, about = child(self.place, "reversible"), (*self.subject, "reversible")
+        if said is None and "equilibrium_constant" in self.document:
+            self.reader.fault(
+                "equilibrium-constant-not-used",
+                child(self.pointer, "equilibrium_constant"),
+                "an equilibrium constant is stated and the rate is irreversible, so that it would"
+                " not be heeded: add 'reversible' to the rate, or leave the constant out",
+            )
+            return None
         if said is None:
             if self.reaction is not None and self.reaction.reversible:
                 self.reader.notes.append(
@@ -296,7 +304,18 @@ class _RateReader:
         equilibrium = self._equilibrium_constant()
         if equilibrium is None:
             return None
-        return ByAffinity(equilibrium, said["affinity_exponent"])
+        exponent = said.get("affinity_exponent")
+        if exponent is None:
+            exponent = 1.0
+            self.reader.assumed.append(
+                Note(
+                    "affinity-exponent-one",
+                    "net rate = forward (1 - Q/K) with Q and K of the equation as written; where"
+                    " the rate-determining step occurs otherwise, state 'affinity_exponent'",
+                    subject=about,
+                )
+            )
+        return ByAffinity(equilibrium, exponent)
 
     def _equilibrium_constant(self) -> EquilibriumConstant | None:
         said = self.document.get("equilibrium_constant")
@@ -331,9 +350,22 @@ class _RateReader:
         if found is None:
             return None
         kind, value = kinds[found[0]], found[1]
+        if kind == "thermodynamic" and self.phase == "gas" and total:
+            self._standard_pressure(said, about)
         if plain:
             return EquilibriumConstant(kind, Constant(value))
         return self._equilibrium_form(said, place, about, kind, value)
+
+    def _standard_pressure(self, said: Json | RawQuantity, subject: Subject) -> None:
+        if isinstance(said, RawQuantity) or "standard_pressure" not in said:
+            self.reader.assumed.append(
+                Note(
+                    "standard-pressure-one-bar",
+                    "the equilibrium constant is a number, so gases count in units of their"
+                    " standard pressure: 1 bar, unless 'standard_pressure' says otherwise",
+                    subject=subject,
+                )
+            )
 
     def _equilibrium_form(
         self, said: Json, pointer: str, subject: Subject, kind: EquilibriumKind, value: float

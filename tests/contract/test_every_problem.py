@@ -393,6 +393,11 @@ case(
     "/reactions/0/equilibrium_constant",
 )
 case(
+    "equilibrium-constant-not-used",
+    volume(reactions__0__equilibrium_constant=2.0),
+    "/reactions/0/equilibrium_constant",
+)
+case(
     "equilibrium-constant-does-not-fit",
     (
         VOLUME,
