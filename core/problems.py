@@ -496,6 +496,11 @@ _REACTORS: dict[str, Entry] = {
         "The rate is driven by partial pressures and the feed is a liquid. Give the law in"
         " concentrations or mole fractions.",
     ),
+    "mole-fractions-not-known": Entry(
+        "Mole fractions not known",
+        "A liquid given by concentrations may hold a solvent that they do not name. State its"
+        " density too, or the flows of everything in it, where mole fractions matter.",
+    ),
     "order-outside-phase": Entry(
         "Order of a substance outside the phase",
         "The law counts a substance that is not in the phase where the reaction runs. Leave its"

@@ -134,7 +134,10 @@ class SpeciesFlowSchema(OpenSchema):
 
     flow = number("Molar flow.")
     amount = number("Amount, of a batch.")
-    mole_fraction = number("Of the stream's own phase; absent for a substance outside it.")
+    mole_fraction = number(
+        "Of the stream's own phase; absent for a substance outside it, null where a solvent may"
+        " be in it that the request does not name."
+    )
     concentration = number("In the stream's own phase; null where the volume is not known.")
 
 
@@ -162,6 +165,7 @@ def write_stream(
     temperature: float | None,
     pressure: float | None,
     compressibility: float = 1.0,
+    fractions: bool = True,
     u: FloatArray | None = None,
     total_u: float | None = None,
 ) -> Json:
@@ -180,6 +184,8 @@ def write_stream(
     temperature, pressure : float or None
         K, Pa.
     compressibility : float
+    fractions : bool
+        Whether mole fractions are known.
     u : ndarray, shape (S,), or None
         Standard uncertainties of the flows.
     total_u : float or None
@@ -201,7 +207,9 @@ def write_stream(
     for name, flow, within in zip(names, values, inside, strict=True):
         said: Json = {word: {"value": flow / factor, "unit": unit}}
         if within:
-            said["mole_fraction"] = {"value": flow / phase_total, "unit": "1"}
+            said["mole_fraction"] = (
+                {"value": flow / phase_total, "unit": "1"} if fractions else None
+            )
             said["concentration"] = (
                 None
                 if per_volume is None
@@ -245,4 +253,5 @@ def write_known_stream(edge: EdgeMap, names: Sequence[str], stream: Stream) -> J
         temperature=stream.temperature,
         pressure=stream.pressure,
         compressibility=stream.compressibility,
+        fractions=not stream.solvent_unknown,
     )

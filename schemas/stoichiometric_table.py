@@ -217,7 +217,7 @@ class StoichiometricTableResult(OpenSchema):
     largest_conversion = number(required=True)
     smallest_conversion = number("Where a reaction is reversible: the reverse limit.")
     delta = number("For one reaction.")
-    epsilon = number("For one reaction; over the substances of the stream's own phase.")
+    epsilon = number("For one reaction in a gas; over the substances of the gas.")
     key_mole_fraction = number("Of the feed's own phase.")
     species = numbers_by_name(SpeciesRoleSchema, required=True)
     inlet = fields.Nested(StreamResultSchema, required=True)
@@ -242,8 +242,10 @@ def write(table: StoichiometricTable, edge: EdgeMap) -> Answer:
     }
     if any(reaction.reversible for reaction in reactions.reactions):
         result["smallest_conversion"] = _plain(reach.smallest)
-    if table.delta is not None and table.epsilon is not None:
-        result["delta"], result["epsilon"] = _plain(table.delta), _plain(table.epsilon)
+    if table.delta is not None:
+        result["delta"] = _plain(table.delta)
+    if table.epsilon is not None:
+        result["epsilon"] = _plain(table.epsilon)
     if table.key_mole_fraction is not None:
         result["key_mole_fraction"] = _plain(table.key_mole_fraction)
     result["species"] = _species(table)
@@ -327,6 +329,7 @@ def _states(table: StoichiometricTable, edge: EdgeMap) -> list[Json]:
             temperature=states.temperature,
             pressure=None if pressures is None else float(pressures[k]),
             compressibility=states.compressibility,
+            fractions=not inlet.solvent_unknown,
         )
         state["constant_flow_error"] = _plain(float(states.constant_flow_error[k]))
         written.append(state)
@@ -354,7 +357,11 @@ def _table(table: StoichiometricTable, edge: EdgeMap) -> Table:
     columns[f"inlet {words.flow}"] = (inlet.flows / flow.factor).tolist() * count
     columns["change"] = (states.changes / flow.factor).ravel().tolist()
     columns[f"outlet {words.flow}"] = (states.flows / flow.factor).ravel().tolist()
-    columns["mole fraction"] = _cells(states.mole_fractions.ravel())
+    columns["mole fraction"] = (
+        [None] * (count * len(names))
+        if inlet.solvent_unknown
+        else _cells(states.mole_fractions.ravel())
+    )
     concentrations = states.concentrations
     columns["concentration"] = (
         [None] * (count * len(names))

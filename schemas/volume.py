@@ -9,7 +9,7 @@ from marshmallow import fields
 
 from core.constants import NORMAL_MOLAR_VOLUME
 from core.errors import Note, Refused, Subject
-from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNKNOWN
 from core.mole_account.targets import DIMENSIONS as TARGET_DIMENSIONS
 from core.mole_account.targets import conversion_for
 from core.reactions.reaction_set import ReactionSet
@@ -332,7 +332,7 @@ def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
         result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
     return Answer(
         result=result,
-        notes=edge.notes((*edge.read_notes, *sizing.notes, SCREENING)),
+        notes=edge.notes((*edge.read_notes, *sizing.notes, *_notes(feed))),
         assumed=edge.notes((*edge.read_assumed, *_assumed(problem))),
         method=METHOD,
         data=ATOMIC_WEIGHTS,
@@ -361,6 +361,10 @@ def _profile(sizing: Sizing, dimension: str, edge: EdgeMap) -> Table:
         },
         {dimension: size.unit, "conversion": "1", "rate": rate.unit},
     )
+
+
+def _notes(feed: Stream) -> tuple[Note, ...]:
+    return (SOLVENT_UNKNOWN, SCREENING) if feed.solvent_unknown else (SCREENING,)
 
 
 def _assumed(problem: SizingProblem) -> list[Note]:

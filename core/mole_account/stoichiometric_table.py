@@ -142,7 +142,7 @@ class StoichiometricTable:
     range : ConversionRange
     theta : ndarray, shape (S,)
     delta, epsilon : float or None
-        For one reaction; None for several.
+        For one reaction; None for several. epsilon of a gas only.
     key_mole_fraction : float or None
         Of the stream's own phase; None where the key is outside it.
     roles : tuple of Role, length S
@@ -269,7 +269,10 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
     states = _states(problem, account, extents)
     fed = float(feed[key])
     share = fed / float(inlet.phase_total)
+    gas = inlet.phase == "gas"
     notes: list[Note] = []
+    if inlet.solvent_unknown:
+        notes.append(SOLVENT_UNKNOWN)
     if states.volumetric_flows is None:
         notes.append(_no_concentrations(inlet))
     if states.extents is None:
@@ -285,8 +288,9 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
         range=reach,
         theta=feed / fed,
         delta=account.delta,
-        epsilon=None if account.delta is None else share * account.delta,
-        key_mole_fraction=share if inlet.in_phase[key] else None,
+        # The volume of a liquid does not follow its moles.
+        epsilon=share * account.delta if account.delta is not None and gas else None,
+        key_mole_fraction=share if inlet.in_phase[key] and not inlet.solvent_unknown else None,
         roles=account.roles,
         states=states,
         fails_because=_fails_because(problem, account),
@@ -460,7 +464,7 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
     # flow stands well above what rounding could leave of the largest.
     furthest = max(map(abs, extents.ravel().tolist()))
     most = max(inlet.flows.tolist()) + account.largest_size * furthest
-    if not flows.min() > ROUNDING * most:
+    if not min(map(min, flows.tolist())) > ROUNDING * most:
         passing = inlet.flows + abs(extents).dot(account.sizes)
         flows[abs(flows) <= ROUNDING * passing] = 0.0
     phase_totals = phase_sum(flows, inlet.in_phase)
@@ -546,6 +550,12 @@ def _no_concentrations(inlet: Stream) -> Note:
     )
 
 
+SOLVENT_UNKNOWN = Note(
+    "mole-fractions-not-known",
+    "a liquid given by concentrations may hold a solvent that they do not name, so it has no mole"
+    " fractions; state its density too, or flows of everything in it",
+    subject=("feed",),
+)
 CONSTANT_DENSITY = Note(
     "constant-density", "the liquid's volumetric flow is that of the feed throughout"
 )

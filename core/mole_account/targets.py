@@ -74,6 +74,13 @@ def conversion_for(
                 f"{name} is not in the {feed.phase}, where its {kind.replace('_', ' ')} would be;"
                 " state its flow instead",
             )
+        if kind == "mole_fraction" and feed.solvent_unknown:
+            raise refuse(
+                "mole-fractions-not-known",
+                subject,
+                "the liquid is given by concentrations, beside which a solvent may be in it: state"
+                " its density too, flows of everything in it, or a concentration as the target",
+            )
         total = float(feed.phase_total)
         change = float(nu[feed.in_phase].sum() / -nu[key]) * key_flow
     if kind == "concentration":

@@ -122,6 +122,16 @@ class PowerLaw:
                     {"name": names[self.of]},
                 )
             )
+        if self.driving == "mole-fraction" and stream.solvent_unknown:
+            faults.append(
+                Fault(
+                    "mole-fractions-not-known",
+                    (*subject, "driving"),
+                    "mole fractions drive the rate, and the liquid is given by concentrations,"
+                    " beside which a solvent may be in it: state its density too, or flows of"
+                    " everything in it",
+                )
+            )
         if self.driving == "partial-pressure" and stream.phase != "gas":
             faults.append(
                 Fault(

@@ -7,7 +7,7 @@ axes, written (...) below; one case is the same with N = 1.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import ClassVar, Literal, Protocol
 
 import numpy as np
@@ -220,16 +220,7 @@ def outlet_stream(problem: SizingProblem, path: ReactionPath, *, constant_volume
         rise = (there[:, -2] / account.start[:, -2]).reshape(lead)
         # Of one case a number like that of the feed, of several an array.
         pressure = pressure * (rise if lead else float(rise))  # type: ignore[assignment]
-    return Stream(
-        flows=flows,
-        in_phase=feed.in_phase,
-        phase=feed.phase,
-        batch=feed.batch,
-        temperature=feed.temperature,
-        pressure=pressure,
-        compressibility=feed.compressibility,
-        liquid_volumetric_flow=feed.liquid_volumetric_flow,
-    )
+    return replace(feed, flows=flows, pressure=pressure)
 
 
 def limit_of(path: ReactionPath) -> Limit:

@@ -16,6 +16,11 @@ from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import Measurement, MeteredStream
 from core.streams.stream import Stream, StreamPhase, phase_sum
 
+CONCENTRATIONS = ("concentration", "mass-concentration")
+
+SOLVENT = 0.02
+"""Share of a liquid's density from which on something is in it that its concentrations miss."""
+
 CONTRADICTION = 0.01
 """Relative difference between a stated volume and that of the gas law which is refused."""
 
@@ -37,7 +42,7 @@ def is_direct(stream: MeteredStream) -> bool:
     """Whether the stream's flows are read substance by substance, with nothing to solve for."""
     if stream.analysis is None:
         return all(f.substance is not None or f.kind == "volume" for f in stream.flows)
-    return stream.analysis.basis in ("concentration", "mass-concentration") and any(
+    return stream.analysis.basis in CONCENTRATIONS and any(
         f.substance is None and f.kind == "volume" and f.molar_volume is None for f in stream.flows
     )
 
@@ -139,8 +144,24 @@ def join_streams(
         pressure=pressure,
         compressibility=conditions.compressibility,
         liquid_volumetric_flow=volume if conditions.phase == "liquid" else None,
+        solvent_unknown=conditions.phase == "liquid"
+        and any(
+            _solvent_unknown(stream, own, reactions.molar_masses)
+            for stream, own in zip(streams, each, strict=True)
+        ),
     )
     return stream, assumed
+
+
+def _solvent_unknown(stream: MeteredStream, own: FloatArray, molar_masses: FloatArray) -> bool:
+    """Whether a liquid given by concentrations may hold more than they name."""
+    if stream.analysis is None or stream.analysis.basis not in CONCENTRATIONS:
+        return False
+    volume = stated_volume(stream)
+    if volume is None or stream.density is None:
+        return True
+    missing = 1 - float(own @ molar_masses) / volume / stream.density.value
+    return missing > SOLVENT
 
 
 def _value(measurement: Measurement | None) -> float | None:

@@ -45,6 +45,10 @@ class Stream:
         Z, -.
     liquid_volumetric_flow : float or None
         m3/s (batch: m3) of a liquid, where it can be known.
+    solvent_unknown : bool
+        The flows need not be all that there is in the phase: a liquid given by
+        concentrations may hold a solvent that nobody names. It has no mole
+        fractions then.
     """
 
     flows: FloatArray
@@ -55,6 +59,7 @@ class Stream:
     pressure: float | None = None
     compressibility: float = 1.0
     liquid_volumetric_flow: float | None = None
+    solvent_unknown: bool = False
 
     @cached_property
     def phase_total(self) -> FloatArray:

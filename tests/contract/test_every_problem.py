@@ -419,6 +419,14 @@ case(
     "/reactions/0/rate/driving",
 )
 case(
+    "mole-fractions-not-known",
+    volume(
+        reactions__0__rate__driving="mole-fraction",
+        reactions__0__rate__constant="1 mol/(m3 s)",
+    ),
+    "/reactions/0/rate/driving",
+)
+case(
     "order-outside-phase",
     volume(
         species__R__phase="gas",
@@ -451,7 +459,7 @@ case(
 case("target-form", volume(target={"species": "R"}), "/target")
 case(
     "target-does-not-move",
-    volume(feed__concentrations__N2="1 mol/l", target={"species": "N2", "mole_fraction": 0.1}),
+    volume(feed__concentrations__N2="1 mol/l", target={"species": "N2", "concentration": "2 mol/l"}),
     "/target",
 )
 case(
