@@ -563,9 +563,25 @@ CONSTANT_DENSITY = Note(
 
 def _assumed(problem: TableProblem) -> tuple[Note, ...]:
     inlet = problem.inlet
-    if inlet.phase == "liquid" and inlet.liquid_volumetric_flow is not None:
-        return (CONSTANT_DENSITY,)
-    return ()
+    if inlet.phase == "liquid":
+        return () if inlet.liquid_volumetric_flow is None else (CONSTANT_DENSITY,)
+    held = inlet.batch and problem.hold == "volume"
+    kept = [
+        name
+        for name in ("temperature", "pressure")
+        if getattr(inlet, name) is not None
+        and getattr(problem.outlet, name) is None
+        and not (held and name == "pressure")
+    ]
+    if not kept:
+        return ()
+    return (
+        Note(
+            "outlet-as-feed",
+            f"the {' and the '.join(kept)} at the outlet {'are' if len(kept) > 1 else 'is'} that of"
+            " the feed, where 'outlet' does not say otherwise",
+        ),
+    )
 
 
 def _expressions(table: StoichiometricTable) -> list[tuple[str, str | None]]:

@@ -12,7 +12,13 @@ from core.errors import Amount, Note, Subject, refuse
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.reconciliation import estimate_feed
 from core.reactions.reaction_set import ReactionSet
-from core.streams.known import Conditions, direct_flows, is_direct, join_streams
+from core.streams.known import (
+    Conditions,
+    direct_flows,
+    is_direct,
+    join_streams,
+    solids_taken_as_gas,
+)
 from core.streams.metered import MeteredStream
 from core.streams.stream import Stream
 
@@ -65,7 +71,13 @@ def known_feed(
         stream, assumed = join_streams(
             reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=batch
         )
-        return KnownFeed(stream, estimated=False, per_mole_of_key=False, assumed=assumed)
+        return KnownFeed(
+            stream,
+            estimated=False,
+            per_mole_of_key=False,
+            assumed=assumed,
+            notes=solids_taken_as_gas(reactions, conditions.phase),
+        )
     found = estimate_feed(reactions, key, tuple(streams), batch)
     each = _stream_flows(reactions, found, conditions)
     stream, assumed = join_streams(
@@ -73,6 +85,7 @@ def known_feed(
     )
     scaled = bool(found.per_mole_of_key)
     told = [note for note in found.notes if note.code != "no-redundancy"]
+    told.extend(solids_taken_as_gas(reactions, conditions.phase))
     if found.inconsistent:
         told.append(
             Note(

@@ -84,6 +84,86 @@ def in_phase(reactions: ReactionSet, phase: StreamPhase) -> BoolArray:
     return present
 
 
+INVOLATILE = frozenset(
+    # fmt: off
+    [
+        "Li",
+        "Be",
+        "B",
+        "C",
+        "Na",
+        "Mg",
+        "Al",
+        "Si",
+        "K",
+        "Ca",
+        "Sc",
+        "Ti",
+        "V",
+        "Cr",
+        "Mn",
+        "Fe",
+        "Co",
+        "Ni",
+        "Cu",
+        "Ga",
+        "Ge",
+        "Rb",
+        "Sr",
+        "Y",
+        "Zr",
+        "Nb",
+        "Mo",
+        "Ru",
+        "Rh",
+        "Pd",
+        "Ag",
+        "Cd",
+        "In",
+        "Sn",
+        "Sb",
+        "Cs",
+        "Ba",
+        "La",
+        "Ce",
+        "Hf",
+        "Ta",
+        "W",
+        "Re",
+        "Os",
+        "Ir",
+        "Pt",
+        "Au",
+        "Tl",
+        "Pb",
+        "Bi",
+    ]
+    # fmt: on
+)
+"""Elements that are solids, or melts, wherever a reactor is run (common practice)."""
+
+
+@lru_cache(maxsize=256)
+def solids_taken_as_gas(reactions: ReactionSet, phase: StreamPhase) -> tuple[Note, ...]:
+    """Return warnings about elements counted in a gas that are hardly ever in one."""
+    if phase != "gas":
+        return ()
+    return tuple(
+        Note(
+            "solid-taken-as-gas",
+            f"{substance.name} is counted in the gas and its volume; if it is a solid, declare it"
+            f" so under 'species' (phase), or write {substance.name}(s) in the equation",
+            "warning",
+            ("reactions",),
+        )
+        for substance in reactions.substances
+        if substance.phase is None
+        and substance.formula is not None
+        and len(substance.formula.elements) == 1
+        and set(substance.formula.elements) <= INVOLATILE
+    )
+
+
 def join_streams(
     reactions: ReactionSet,
     flows: FloatArray,
@@ -112,6 +192,9 @@ def join_streams(
     stream : Stream
     assumed : tuple of Note
         What had to be assumed to know its volume.
+
+    Elements that are hardly ever in a gas are remarked on by
+    :func:`solids_taken_as_gas`.
 
     Raises
     ------

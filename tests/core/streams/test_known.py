@@ -112,3 +112,16 @@ def test_what_needs_an_estimation_is_not_direct():
 def test_nothing_flowing_is_refused():
     with pytest.raises(Refused, match="no-flow"):
         join(flows(CO=("amount", 0.0)))
+
+
+def test_carbon_in_a_gas_is_remarked_on_unless_it_is_said_to_be_solid():
+    from core.streams.known import solids_taken_as_gas
+
+    def notes(*equations):
+        inputs = [ReactionInput("r1", text, ("reactions", 0)) for text in equations]
+        made = build_reaction_set(inputs)[0]
+        return [note.code for note in solids_taken_as_gas(made, "gas")]
+
+    assert notes("CH4 -> C + 2 H2") == ["solid-taken-as-gas"]
+    assert notes("CH4 -> C(s) + 2 H2") == []
+    assert notes("2 SO2 + O2 -> 2 SO3") == []
