@@ -101,9 +101,10 @@ def reader_of(field: fields.Field[Any]) -> Reader:
         return field._deserialize
     if field.unknown or field.many:
         return field.deserialize
+    load = field.schema.load
 
     def read(value: Any, _name: Any, _data: Any) -> Any:
-        return field.deserialize(None) if value is None else field.schema.load(value)
+        return field.deserialize(None) if value is None else load(value)
 
     return read
 

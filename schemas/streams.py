@@ -492,8 +492,7 @@ class StreamReader:
                 if not weights:  # refused with the substances
                     continue
                 molar_mass = float(self.reactions.molar_masses[next(iter(weights))])
-                stated = self.reader.places[about]
-                self.reader.places[about] = stated._replace(per=molar_mass)
+                self.reader.places[about] = (place, raw.unit, molar_mass)
                 found = found._replace(
                     value=found.value / molar_mass,
                     u=None if found.u is None else found.u / molar_mass,
@@ -624,7 +623,7 @@ class StreamReader:
         """Return the assumptions that the default uncertainties of the readings used are."""
         notes = []
         for kind, subjects in self.defaults.items():
-            pointers = [self.reader.places[s].pointer for s in subjects if s in used]
+            pointers = [self.reader.places[s][0] for s in subjects if s in used]
             if pointers:
                 notes.append(
                     Note(
