@@ -32,8 +32,19 @@ class Amount:
         return f"{self.value:.6g} ({self.dimension}, SI)"
 
 
-Fact = Amount | str | int
-"""A value quoted by a fault: an amount, a name or a count."""
+@dataclass(frozen=True)
+class Readings:
+    """Readings, or whatever else of the request is named in a row."""
+
+    subjects: tuple[Subject, ...]
+
+    def __str__(self) -> str:
+        """Name them as the core does; the edge prints their places in the request instead."""
+        return ", ".join("/".join(map(str, subject)) for subject in self.subjects)
+
+
+Fact = Amount | Readings | str | int
+"""A value quoted by a fault: an amount, readings, a name or a count."""
 
 
 @dataclass(frozen=True)

@@ -31,7 +31,9 @@ class ReadingTable:
     reconciled, reconciled_u : ndarray, shape (..., m)
     adjustment_over_u : ndarray, shape (..., m)
         (measured - reconciled)/sqrt(u^2 - u_reconciled^2), standard normal
-        where nothing is wrong; absent without redundancy.
+        where nothing is wrong; absent without redundancy. Above zero where
+        the reading lies above its reconciled value: what the account does to
+        the reading has the other sign.
     redundancy : ndarray, shape (..., m)
         1 - leverage: 0 where no other reading checks this one; absent of a bound.
     smallest_detectable_error : ndarray, shape (..., m)

@@ -15,7 +15,7 @@ from itertools import combinations
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Fault, Subject
+from core.errors import Fact, Fault, Readings, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.readings import FURTHER, VOLUME, ReadingWriter, describe_stream
 from core.streams.metered import FlowReading, Measurement
@@ -116,10 +116,10 @@ def under_determined(
     else:
         options = "none found among the flows and fractions of these streams"
         detail = "the readings leave open {open}; readings that would settle it: {further}"
-    facts: dict[str, str] = {"open": _listed(words), "further": options}
+    facts: dict[str, Fact] = {"open": _listed(words), "further": options}
     if missing:
         detail += ". Missing here: {missing}"
-        facts["missing"] = ", ".join("/".join(map(str, subject)) for subject in missing)
+        facts["missing"] = Readings(missing)
     subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
     return Fault("under-determined", subject, detail, facts)
 

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Fault
+from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
@@ -337,11 +337,14 @@ def conflict(account: Account, rows: list[int]) -> Fault:
     """Return the fault of exact readings that contradict one another."""
     subjects = account.readings.subjects
     named = [row for row in rows if row < len(subjects)]
-    words = ", ".join("/".join(map(str, subjects[row])) for row in named)
     return Fault(
         "exact-readings-conflict",
         subjects[named[-1]] if named else ("key",),
         "the readings stated as exact cannot all be true together: {readings}. Give those that"
         " were measured their uncertainty, or mend the value that is wrong",
-        {"readings": words or "the flow of the key"},
+        {
+            "readings": Readings(tuple(subjects[row] for row in named))
+            if named
+            else "the flow of the key"
+        },
     )

@@ -10,7 +10,7 @@ import pytest
 from numpy.testing import assert_allclose
 
 import core.outlet_analysis.reconciliation as reconciliation
-from core.errors import Refused
+from core.errors import Readings, Refused
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.readings import BELOW, Series
@@ -126,7 +126,9 @@ def test_every_sample_equals_its_own_single_estimate() -> None:
         assert_allclose(results.closures.ratio.value[k], of.closures.ratio.value, rtol=1e-9)
         assert_allclose(results.closures.ratio.u[k], of.closures.ratio.u, rtol=1e-7)
     assert found.readings.suspect_set[20].any()
-    assert "missing" in found.failed[25].facts
+    missing = found.failed[25].facts["missing"]
+    assert isinstance(missing, Readings)
+    assert CO_OUT in missing.subjects
 
 
 def test_place_in_the_series_and_block_size_do_not_matter(monkeypatch: Any) -> None:

@@ -10,7 +10,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
-from core.errors import Refused
+from core.errors import Readings, Refused
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.estimate import Estimate
@@ -261,6 +261,9 @@ def test_exact_fractions_that_do_not_sum_to_one_contradict(nitrogen: float) -> N
     fault = fault_of(burner({"O2": 0.21, "N2": nitrogen}))
     assert fault.code == "exact-readings-conflict"
     assert "air/analysis/values/O2" in str(fault)
+    named = fault.facts["readings"]
+    assert isinstance(named, Readings)
+    assert ("air", "analysis", "values", "N2") in named.subjects
 
 
 def test_exact_readings_that_contradict_through_the_account() -> None:
