@@ -84,62 +84,10 @@ def in_phase(reactions: ReactionSet, phase: StreamPhase) -> BoolArray:
     return present
 
 
-INVOLATILE = frozenset(
-    # fmt: off
-    [
-        "Li",
-        "Be",
-        "B",
-        "C",
-        "Na",
-        "Mg",
-        "Al",
-        "Si",
-        "K",
-        "Ca",
-        "Sc",
-        "Ti",
-        "V",
-        "Cr",
-        "Mn",
-        "Fe",
-        "Co",
-        "Ni",
-        "Cu",
-        "Ga",
-        "Ge",
-        "Rb",
-        "Sr",
-        "Y",
-        "Zr",
-        "Nb",
-        "Mo",
-        "Ru",
-        "Rh",
-        "Pd",
-        "Ag",
-        "Cd",
-        "In",
-        "Sn",
-        "Sb",
-        "Cs",
-        "Ba",
-        "La",
-        "Ce",
-        "Hf",
-        "Ta",
-        "W",
-        "Re",
-        "Os",
-        "Ir",
-        "Pt",
-        "Au",
-        "Tl",
-        "Pb",
-        "Bi",
-    ]
-    # fmt: on
-)
+_SOLIDS = """
+    Li Be B C Na Mg Al Si K Ca Sc Ti V Cr Mn Fe Co Ni Cu Ga Ge Rb Sr Y Zr Nb Mo Ru Rh Pd Ag Cd In
+    Sn Sb Cs Ba La Ce Hf Ta W Re Os Ir Pt Au Tl Pb Bi"""
+INVOLATILE = frozenset(_SOLIDS.split())
 """Elements that are solids, or melts, wherever a reactor is run (common practice)."""
 
 
