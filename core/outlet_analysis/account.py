@@ -14,7 +14,7 @@ Every flow is a linear form of the unknowns.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
@@ -125,6 +125,11 @@ class Account:
         return (*self.problem.feed, *self.problem.outlet)
 
 
+def listed(words: Sequence[str]) -> str:
+    """Return the words in a row: 'a, b and c'."""
+    return words[0] if len(words) == 1 else ", ".join(words[:-1]) + " and " + words[-1]
+
+
 def independent_reactions(nu: FloatArray) -> list[int]:
     """Indices of the first reactions that are not combinations of those before them."""
     chosen: list[int] = []
@@ -157,7 +162,8 @@ def build_account(problem: AccountProblem) -> Account:
     Raises
     ------
     Refused
-        ``key-not-fed``: no feed stream holds the key. Also what
+        ``key-not-fed``: no feed stream holds the key. ``nowhere-to-leave``:
+        none of several outlet streams can hold a substance. Also what
         :func:`core.outlet_analysis.readings.read` raises.
     """
     _check(problem)
@@ -185,7 +191,7 @@ def release_outlet(account: Account) -> Account:
 
 def _check(problem: AccountProblem) -> None:
     name = problem.reactions.names[problem.key]
-    if not any(problem.key in stream.present for stream in problem.feed):
+    if not any(problem.key in fed_in(stream) for stream in problem.feed):
         raise refuse(
             "key-not-fed",
             ("key",),
@@ -195,17 +201,54 @@ def _check(problem: AccountProblem) -> None:
         )
 
 
-def _places(problem: AccountProblem, reachable: Iterable[int]) -> dict[int, list[int]]:
+def fed_in(stream: MeteredStream) -> frozenset[int]:
+    """Return what a feed stream may hold."""
+    assert stream.present is not None
+    return stream.present
+
+
+def _places(
+    problem: AccountProblem, writer: ReadingWriter, reachable: Iterable[int]
+) -> dict[int, list[int]]:
     """Outlet streams in which each substance may leave, counted from 0."""
     outlets = problem.outlet
-    found: dict[int, list[int]] = {}
-    for i in reachable:
-        named = [q for q, stream in enumerate(outlets) if i in stream.present]
-        phase = problem.reactions.substances[i].phase
-        if not named and phase is not None:
-            named = [q for q, stream in enumerate(outlets) if stream.phase == phase]
-        found[i] = named if named and len(outlets) > 1 else list(range(len(outlets)))
+    if len(outlets) == 1:
+        return {i: [0] for i in reachable}
+    holds = [
+        frozenset(np.flatnonzero(own).tolist()) if stream.present is None else stream.present
+        for stream, own in zip(outlets, writer.own[len(problem.feed) :], strict=True)
+    ]
+    found = {i: [q for q, held in enumerate(holds) if i in held] for i in reachable}
+    stuck = [i for i, where in found.items() if not where and _may_occur(problem, i)]
+    if stuck:
+        raise refuse(
+            "nowhere-to-leave",
+            ("outlet",),
+            "found no outlet stream that can hold {substances}, which is fed or made. Name it in"
+            " the analysis of the stream in which it leaves, leave the analysis of that stream"
+            " open (no balance, and values that do not sum to 100 %), or add the stream",
+            substances=listed([problem.reactions.names[i] for i in stuck]),
+        )
     return found
+
+
+def _may_occur(problem: AccountProblem, substance: int) -> bool:
+    """Whether a substance can be there at all: made, used up, or not fed as exactly nothing."""
+    if problem.reactions.nu[:, substance].any():
+        return True
+    for stream in problem.feed:
+        if substance not in fed_in(stream):
+            continue
+        nothing = any(
+            reading.substance == substance
+            and reading.measurement.value == 0
+            and reading.measurement.u == 0
+            and reading.measurement.subject not in problem.series
+            for reading in stream.flows
+        )
+        if not nothing:
+            return True
+    return False
 
 
 def _assemble(
@@ -225,7 +268,7 @@ def _assemble(
     # Summed flows as {column: coefficient} by substance, feeds first.
     total: list[dict[int, float]] = [{} for _ in range(count)]
     for g, stream in enumerate(problem.feed):
-        for i in sorted(stream.present):
+        for i in sorted(fed_in(stream)):
             column = columns.add("flow", g, i)
             entries.append((g * count + i, column, 1.0))
             total[i][column] = 1.0
@@ -238,7 +281,10 @@ def _assemble(
     made = np.any(nu != 0, axis=0)
     reachable = [i for i in range(count) if fed[i] or made[i]]
     left: list[dict[int, float]] = [{} for _ in range(count)]
-    for i, where in _places(problem, reachable).items() if problem.outlet else ():
+    places = _places(problem, writer, reachable) if problem.outlet else {}
+    for i, where in places.items():
+        if not where:
+            continue
         free = released is not None and i not in released
         for q in where if free else where[:-1]:
             column = columns.add("flow", feeds + q, i)

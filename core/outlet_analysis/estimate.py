@@ -124,6 +124,25 @@ class Estimate:
         """Flows out of the reactor, shape (..., S), mol/s (batch: mol)."""
         return np.asarray(self.z @ self.account.outlet_map.T)
 
+    def stream_forms(self, g: int) -> FloatArray:
+        """Return the flows in stream ``g`` as linear forms of ``z``, shape (S, n).
+
+        Streams are counted from 0, feeds followed by outlets.
+        """
+        count = len(self.account.problem.reactions.substances)
+        return self.account.stream_map[g * count : (g + 1) * count]
+
+    def stream_flows(self, g: int) -> FloatArray:
+        """Return the flows in stream ``g``, feeds followed by outlets, shape (..., S), mol/s.
+
+        Not a number where the readings do not tell how a substance is shared
+        out among the outlet streams. Uncertainties: :meth:`u_of` the
+        :meth:`stream_forms`.
+        """
+        forms = self.stream_forms(g)
+        told = ~((~self.told[..., None, :]) & (forms != 0)).any(axis=-1)
+        return np.where(told, self.z @ forms.T, np.nan)
+
     @property
     def extents(self) -> FloatArray:
         """Extents of the reactions, shape (..., R), mol/s (batch: mol).

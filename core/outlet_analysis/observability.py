@@ -16,7 +16,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fact, Fault, Readings, Subject
-from core.outlet_analysis.account import Account
+from core.outlet_analysis.account import Account, listed
 from core.outlet_analysis.readings import FURTHER, VOLUME, ReadingWriter, describe_stream
 from core.streams.metered import FlowReading, Measurement
 
@@ -106,7 +106,7 @@ def under_determined(
     for forms, where in ((fed, "fed"), (left, "leaving")):
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
-            words.append(f"the flow of {_listed(found)} {where}")
+            words.append(f"the flow of {listed(found)} {where}")
     target = np.concatenate(reported) * natural @ directions
     sets = _settling(_candidates(account, z, natural), target, directions)
     if sets:
@@ -116,7 +116,7 @@ def under_determined(
     else:
         options = "none found among the flows and fractions of these streams"
         detail = "the readings leave open {open}; readings that would settle it: {further}"
-    facts: dict[str, Fact] = {"open": _listed(words), "further": options}
+    facts: dict[str, Fact] = {"open": listed(words), "further": options}
     if missing:
         detail += ". Missing here: {missing}"
         facts["missing"] = Readings(missing)
@@ -129,10 +129,6 @@ def _conversion_slope(fed: FloatArray, left: FloatArray, z: FloatArray) -> Float
     if not into:
         return fed - left
     return np.asarray((fed - left) / into - fed * float((fed - left) @ z) / into**2)
-
-
-def _listed(words: list[str]) -> str:
-    return words[0] if len(words) == 1 else ", ".join(words[:-1]) + " and " + words[-1]
 
 
 def _candidates(account: Account, z: FloatArray, natural: FloatArray) -> list[_Candidate]:

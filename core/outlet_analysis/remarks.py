@@ -7,7 +7,8 @@ from collections.abc import Callable, Iterator
 import numpy as np
 
 from core.arrays import BoolArray
-from core.errors import Fact, Note
+from core.errors import Fact, Note, Readings
+from core.outlet_analysis.account import Account
 from core.outlet_analysis.estimate import Estimate
 
 ILL_CONDITIONED = 1e8
@@ -65,27 +66,8 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("outlet",) if problem.outlet else ("feed",),
             facts=facts,
         )
-    sides = [("feed", "fed", account.feed_map)]
-    if problem.outlet:
-        sides.append(("outlet", "leaving", account.outlet_map))
-    for side, way, forms in sides:
-        flows = found.z @ forms.T
-        if not (flows < 0).any():
-            continue
-        u = found.u_of(forms)
-        scale = np.abs(flows).max(axis=-1, keepdims=True)
-        below = flows < -np.maximum(2 * u, 1e-9 * scale)
-        for i in np.flatnonzero(below.any(axis=0)).tolist():
-            words, facts = counted(below[:, i])
-            yield Note(
-                "negative-flow",
-                "the readings put the flow of {substance} {way} below zero by more than twice its"
-                " uncertainty, which cannot be: look for a wrong reading, basis, removal or a"
-                " missing reaction" + words,
-                severity="warning",
-                subject=(side, names[i]),
-                facts={"substance": names[i], "way": way, **facts},
-            )
+    yield from _placement(account)
+    yield from _below_zero(found, counted)
     if samples is None:
         numbers = found.readings.suspect_set
         sizes = np.bincount(numbers[numbers > 0], minlength=1)[1:]
@@ -99,6 +81,63 @@ def remarks(found: Estimate) -> Iterator[Note]:
                 facts={"ways": ways, "shown": shown},
             )
     yield from _removal_notes(found, counted)
+
+
+def _placement(account: Account) -> Iterator[Note]:
+    """What several outlet streams are taken to hold."""
+    outlets = account.problem.outlet
+    if len(outlets) < 2:
+        return
+    free = tuple(stream.subject for stream in outlets if stream.present is None)
+    named = tuple(stream.subject for stream in outlets if stream.present is not None)
+    facts: dict[str, Fact] = {}
+    words = []
+    if free:
+        facts["free"] = Readings(free)
+        words.append("anything that the phase can carry may leave in {free}")
+    if named:
+        facts["named"] = Readings(named)
+        words.append("only what is named there leaves in {named}")
+    yield Note("outlet-placement", ", and ".join(words), subject=("outlet",), facts=facts)
+
+
+def _below_zero(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """Flows below zero by more than twice their uncertainty, stream by stream or in the sum."""
+    account = found.account
+    names = account.problem.reactions.names
+    feeds = len(account.problem.feed)
+    sides = [(("feed",), "fed", account.feed_map, range(feeds))]
+    if account.problem.outlet:
+        streams = range(feeds, len(account.streams))
+        sides.append((("outlet",), "leaving", account.outlet_map, streams))
+    for side, way, forms, streams in sides:
+        scale = np.abs(found.z @ forms.T).max(axis=-1, keepdims=True)
+        parts = [
+            (account.streams[g].subject, found.stream_forms(g), found.stream_flows(g))
+            for g in streams
+        ]
+        if len(parts) > 1:
+            parts.append((side, forms, found.z @ forms.T))
+        said: set[int] = set()
+        for subject, of, flows in parts:
+            if not (flows < 0).any():
+                continue
+            below = flows < -np.maximum(2 * found.u_of(of), 1e-9 * scale)
+            there = set(np.flatnonzero(below.any(axis=0)).tolist())
+            # Of the sum only what no single stream shows.
+            new = there - said if of is forms else there
+            said |= there
+            for i in sorted(new):
+                words, facts = counted(below[:, i])
+                yield Note(
+                    "negative-flow",
+                    "the readings put the flow of {substance} {way} below zero by more than twice"
+                    " its uncertainty, which cannot be: look for a wrong reading, basis, removal"
+                    " or a missing reaction" + words,
+                    severity="warning",
+                    subject=(*subject, names[i]),
+                    facts={"substance": names[i], "way": way, **facts},
+                )
 
 
 def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:

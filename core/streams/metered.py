@@ -115,10 +115,12 @@ class MeteredStream:
     Attributes
     ----------
     phase : StreamPhase
-    present : frozenset of int
-        Substances that may be in it. A single outlet holds all that the feed
-        and the reactions bring. Of several, each substance leaves in those that
-        name it, and may leave in any where none does.
+    present : frozenset of int or None
+        Substances that may be in it, exactly these; always stated of a feed.
+        None, of an outlet: whatever its phase can carry, which is all but the
+        substances stated to be of another phase that its own analysis does not
+        read. A single outlet holds all that the feed and the reactions bring,
+        whatever is said here.
     flows : tuple of FlowReading
     analysis : Analysis or None
     temperature, pressure : Measurement or None
@@ -130,7 +132,7 @@ class MeteredStream:
     """
 
     phase: StreamPhase
-    present: frozenset[int]
+    present: frozenset[int] | None
     subject: Subject
     flows: tuple[FlowReading, ...] = ()
     analysis: Analysis | None = None
