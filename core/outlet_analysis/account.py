@@ -178,15 +178,12 @@ def release_outlet(account: Account) -> Account:
     """Return the account with feed and outlet unconnected, on the same readings.
 
     What leaves is then known from the readings of the outlet alone. Only where
-    no meter tells how much leaves, the substances that take no part in any
-    reaction still tie the outlet to the feed.
+    no meter tells how much leaves in a stream, the substances that take no
+    part in any reaction still tie it to the feed.
     """
     problem = account.problem
-    readings = account.readings
-    metered = bool((readings.flow & (readings.stream >= len(problem.feed))).any())
-    inert = ~np.any(problem.reactions.nu != 0, axis=0)
-    ties = frozenset[int]() if metered else frozenset(np.flatnonzero(inert).tolist())
-    return _assemble(problem, readings, account.writer, [], released=ties)
+    unmetered = frozenset(q for q, stream in enumerate(problem.outlet) if not stream.flows)
+    return _assemble(problem, account.readings, account.writer, [], released=unmetered)
 
 
 def _check(problem: AccountProblem) -> None:
@@ -258,7 +255,7 @@ def _assemble(
     reactions: list[int],
     released: frozenset[int] | None,
 ) -> Account:
-    """Lay out the unknowns; ``released`` names the ties of an unconnected outlet."""
+    """Lay out the unknowns; ``released`` are the tied streams of an unconnected outlet."""
     nu = problem.reactions.nu
     count, feeds = len(problem.reactions.substances), len(problem.feed)
     streams = (*problem.feed, *problem.outlet)
@@ -285,7 +282,10 @@ def _assemble(
     for i, where in places.items():
         if not where:
             continue
-        free = released is not None and i not in released
+        free = False
+        if released is not None:
+            where = sorted(where, key=released.__contains__)
+            free = bool(made[i]) or where[-1] not in released
         for q in where if free else where[:-1]:
             column = columns.add("flow", feeds + q, i)
             entries.append(((feeds + q) * count + i, column, 1.0))

@@ -2,8 +2,8 @@
 
 A reconciled account closes by construction, so the closure is taken from the
 same estimation with feed and outlet left unconnected: every stream is then
-what its own readings say. Where no meter tells how much leaves, the inert
-substances tie the outlet to the feed, as one would by hand; an element whose
+what its own readings say. Where no meter tells how much leaves in a stream,
+the inert substances tie it to the feed, as one would by hand; an element whose
 closure then holds by that tie alone has none of its own.
 """
 
