@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import difflib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -19,7 +20,8 @@ from core.outlet_analysis.conversion import ConversionResults, YieldBasis
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
 from core.reactions.reaction_set import ReactionSet
-from core.streams.known import Conditions, in_phase
+from core.streams.known import Conditions, in_phase, solids_taken_as_gas
+from core.streams.metered import MeteredStream
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import StreamResultSchema, is_batch, read_conditions, words_of, write_stream
@@ -27,7 +29,7 @@ from schemas.fields import Choice, Map, Number, Text, describe
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 from schemas.shape import ClosedSchema, child, load
-from schemas.streams import StreamReader, StreamSchema
+from schemas.streams import Side, StreamReader, StreamSchema, substances_of
 
 
 class YieldsSchema(ClosedSchema):
@@ -93,14 +95,17 @@ class ConversionQuestion:
         What is stated of the sum of the streams, ``feed`` and ``outlet``.
     readings : StreamReader
         Knows which readings have a default uncertainty.
+    stream_ids : tuple of str
+        Of the feed streams, then of the outlet streams.
     """
 
     problem: AccountProblem
     basis: YieldBasis
     element: str | None
     per_key: Mapping[int, float]
-    conditions: Mapping[str, Conditions | None]
+    conditions: Mapping[Side, Conditions | None]
     readings: StreamReader
+    stream_ids: tuple[str, ...]
 
 
 def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
@@ -127,12 +132,17 @@ def _read_problem(
     batch = is_batch(request["feed"]) or is_batch(request["outlet"])
     readings = StreamReader(reader, reactions, batch)
     sides, conditions = {}, {}
-    for side in ("feed", "outlet"):
+    ids: list[str] = []
+    names: tuple[Side, ...] = ("feed", "outlet")
+    for side in names:
         subject: Subject = (side,)
-        sides[side] = readings.metered(request[side], f"/{side}", subject, required=False)
+        streams = request[side].get("streams", (request[side],))
+        ids.extend(stream.get("id", str(i)) for i, stream in enumerate(streams))
+        sides[side] = readings.metered(request[side], f"/{side}", subject, side)
         conditions[side] = read_conditions(
-            readings, request[side], f"/{side}", subject, sides[side]
+            readings, request[side], f"/{side}", subject, sides[side], one_phase=False
         )
+    _check_outlet(request["outlet"], reader, reactions, sides["feed"])
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
     if reader.faults:
@@ -147,7 +157,32 @@ def _read_problem(
     )
     per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
     basis: YieldBasis = yields.get("basis", "key")
-    return ConversionQuestion(problem, basis, yields.get("element"), per_key, conditions, readings)
+    return ConversionQuestion(
+        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids)
+    )
+
+
+def _check_outlet(
+    document: Json,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    feed: Sequence[MeteredStream],
+) -> None:
+    """Refuse what is named at the outlet and can be nowhere: a misspelt name, most often."""
+    fed = {i for stream in feed for i in stream.present or ()}
+    for name, pointer in substances_of(document, "/outlet"):
+        i = reactions.find(name)
+        if i is None or i in fed or reactions.nu[:, i].any():
+            continue
+        others = [n for n in reactions.names if n != reactions.names[i]]
+        near = difflib.get_close_matches(name, others, n=1, cutoff=0.5)
+        hint = f" (did you mean {near[0]!r}?)" if near else ""
+        reader.fault(
+            "not-in-account",
+            pointer,
+            f"{name!r} stands in no reaction, and no feed stream holds it: state it in the feed if"
+            f" it is there, or correct the name{hint}",
+        )
 
 
 def _check_yields(yields: Json, reader: RequestReader, reactions: ReactionSet) -> None:
@@ -261,6 +296,9 @@ class ConversionResult(OpenSchema):
 ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
 
 
+ASSUMED = frozenset({"per-mole-of-key", "outlet-placement", "removed-taken-as-absent"})
+"""Notes of the core that are assumptions."""
+
 METHOD = (
     "weighted least squares on the mole account in extents of reaction; linear propagation of"
     " uncertainty (GUM, JCGM 100:2008)"
@@ -298,8 +336,8 @@ class _Writer:
         result: Json = {
             "conversion": self._number(results.conversion),
             "extents": self._by(ids, results.extents, self.flow),
-            "inlet": self._stream("feed", found.feed_flows, found.account.feed_map),
-            "outlet": self._stream("outlet", found.outlet_flows, found.account.outlet_map),
+            "inlet": self._side("feed"),
+            "outlet": self._side("outlet"),
         }
         for name in ("key_consumed_by", "key_produced_by"):
             shares: Uncertain | None = getattr(results, name)
@@ -316,10 +354,12 @@ class _Writer:
         notes: list[Note] = []
         assumed = self.assumed
         for note in (*self.edge.read_notes, *found.notes, *results.notes):
-            (assumed if note.code == "per-mole-of-key" else notes).append(note)
+            (assumed if note.code in ASSUMED else notes).append(note)
+        for phase in sorted({stream.phase for stream in self.problem.outlet}):
+            notes.extend(solids_taken_as_gas(self.reactions, phase))
         if found.inconsistent:
             notes.append(INCONSISTENT)
-        defaults = self.question.readings.default_notes(set(found.readings.subjects))
+        defaults = self.question.readings.readings.default_notes(set(found.readings.subjects))
         return Answer(
             result=result,
             notes=self.edge.notes(notes),
@@ -345,25 +385,63 @@ class _Writer:
             return dict.fromkeys(names)
         return dict(zip(names, self._each(of, dimension), strict=True))
 
-    def _stream(self, side: str, flows: FloatArray, forms: FloatArray) -> Json:
+    def _side(self, side: Side) -> Json:
+        """Return what flows on one side, and each stream where there are several."""
+        found, fed = self.found, len(self.problem.feed)
         metered = self.problem.feed if side == "feed" else self.problem.outlet
+        flows = found.feed_flows if side == "feed" else found.outlet_flows
+        forms = found.account.feed_map if side == "feed" else found.account.outlet_map
         conditions = self.question.conditions[side]
-        phase = metered[0].phase if conditions is None else conditions.phase
-        inside = in_phase(self.reactions, phase)
-        temperature = pressure = volume = None
+        volume = None
+        if conditions is not None and conditions.phase == "liquid":
+            volume = self._liquid_volume(side)
+        stream = self._stream(flows, forms, conditions, volume)
+        if len(metered) > 1:
+            first = 0 if side == "feed" else fed
+            stream["streams"] = {
+                self.question.stream_ids[first + g]: self._one(first + g, one)
+                for g, one in enumerate(metered)
+            }
+        return stream
+
+    def _one(self, g: int, metered: MeteredStream) -> Json:
+        conditions = Conditions(
+            metered.phase,
+            metered.subject,
+            metered.temperature,
+            metered.pressure,
+            metered.compressibility,
+        )
+        return self._stream(
+            self.found.stream_flows(g), self.found.stream_forms(g), conditions, None
+        )
+
+    def _stream(
+        self,
+        flows: FloatArray,
+        forms: FloatArray,
+        conditions: Conditions | None,
+        volume: float | None,
+    ) -> Json:
+        names = self.reactions.names
+        told = np.isfinite(flows)
+        inside = None if conditions is None else in_phase(self.reactions, conditions.phase)
+        if not told.all():
+            # How a substance is shared out is open, so no total and no fraction is known.
+            names = tuple(name for name, there in zip(names, told, strict=True) if there)
+            flows, forms, inside, conditions = flows[told], forms[told], None, None
+        temperature = pressure = None
         z = 1.0
         if conditions is not None:
             z = conditions.compressibility
             temperature = None if conditions.temperature is None else conditions.temperature.value
             pressure = None if conditions.pressure is None else conditions.pressure.value
-        if phase == "gas" and temperature is not None and pressure is not None:
-            total = float(flows[inside].sum())
-            volume = total * z * GAS_CONSTANT * temperature / pressure
-        elif phase == "liquid":
-            volume = self._liquid_volume(side)
-        return write_stream(
+            if conditions.phase == "gas" and temperature is not None and pressure is not None:
+                total = float(flows[inside].sum())
+                volume = total * z * GAS_CONSTANT * temperature / pressure
+        stream = write_stream(
             self.edge,
-            self.reactions.names,
+            names,
             flows,
             inside,
             batch=self.problem.batch,
@@ -374,21 +452,19 @@ class _Writer:
             u=self.found.u_of(forms),
             total_u=float(self.found.u_of(forms.sum(axis=0)[None])[0]),
         )
+        if not told.all():
+            stream["total"] = None
+        return stream
 
-    def _liquid_volume(self, side: str) -> float | None:
+    def _liquid_volume(self, side: Side) -> float | None:
         """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
-        found = self.found
-        fed = len(self.problem.feed)
-        volumes: dict[str, list[float]] = {"feed": [], "outlet": []}
-        for unknown, value in zip(found.account.unknowns, found.z.tolist(), strict=True):
-            if unknown.kind == "volume":
-                volumes["feed" if unknown.stream < fed else "outlet"].append(value)
-        own = volumes[side]
-        if own or side == "feed" or not volumes["feed"]:
-            return sum(own) if own else None
-        # A liquid of constant density leaves with the volume that it came in with.
-        self.assumed.append(CONSTANT_DENSITY)
-        return sum(volumes["feed"])
+        own = self.found.liquid_volume(side)
+        if own is None and side == "outlet":
+            # A liquid of constant density leaves with the volume that it came in with.
+            own = self.found.liquid_volume("feed")
+            if own is not None and np.isfinite(own):
+                self.assumed.append(CONSTANT_DENSITY)
+        return None if own is None or not np.isfinite(own) else float(own)
 
     def _ratios(self, of: Uncertain) -> Json:
         said = self.results.yields

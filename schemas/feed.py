@@ -7,7 +7,6 @@ from dataclasses import dataclass
 from itertools import compress
 
 import numpy as np
-from marshmallow import fields
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Note, Refused, Subject
@@ -17,7 +16,7 @@ from core.streams.known import Conditions
 from core.streams.metered import MeteredStream
 from core.streams.stream import Stream
 from schemas.edge import EdgeMap, Json, RequestReader
-from schemas.results import NumberSchema, OpenSchema, number, numbers_by_name
+from schemas.results import OpenSchema, number, numbers_by_name
 from schemas.shape import child
 from schemas.streams import StreamReader
 
@@ -59,8 +58,8 @@ def read_feed(
     batch = is_batch(document)
     kept = len(reader.faults)
     readings = StreamReader(reader, reactions, batch)
-    streams = readings.metered(document, pointer, subject, required=True)
-    conditions = read_conditions(readings, document, pointer, subject, streams)
+    streams = readings.metered(document, pointer, subject, "feed")
+    conditions = read_conditions(readings, document, pointer, subject, streams, one_phase=True)
     if len(reader.faults) > kept or conditions is None or key < 0:
         return None
     try:
@@ -71,7 +70,7 @@ def read_feed(
     reader.assumed.extend(known.assumed)
     reader.notes.extend(known.notes)
     if known.estimated:
-        reader.assumed.extend(readings.default_notes(known.weighed))
+        reader.assumed.extend(readings.readings.default_notes(known.weighed))
     elif _has_uncertainty(document):
         reader.notes.append(
             Note(
@@ -90,8 +89,14 @@ def read_conditions(
     pointer: str,
     subject: Subject,
     streams: Sequence[MeteredStream],
+    *,
+    one_phase: bool,
 ) -> Conditions | None:
-    """Return what is stated of the sum of the streams; None where no phase is."""
+    """Return what is stated of the sum of the streams.
+
+    None after a fault; also where the streams are of several phases, unless the
+    sum must be of one (the feed of a reactor of that phase).
+    """
     if "streams" not in document:
         if not streams:
             return None
@@ -99,7 +104,18 @@ def read_conditions(
         return Conditions(
             stream.phase, subject, stream.temperature, stream.pressure, stream.compressibility
         )
-    phase = document.get("phase")
+    phases = {stream.phase for stream in streams}
+    mixed = len(phases) > 1
+    if mixed and not one_phase:
+        for name in ("temperature", "pressure"):
+            if name in document:
+                readings.reader.fault(
+                    "conflicting-fields",
+                    child(pointer, name),
+                    "the streams are of several phases; state it in each of them",
+                )
+        return None
+    phase = document.get("phase") or (None if mixed or not phases else phases.pop())
     if phase is None:
         readings.reader.fault(
             "field-needed",
@@ -141,7 +157,7 @@ class SpeciesFlowSchema(OpenSchema):
     concentration = number("In the stream's own phase; null where the volume is not known.")
 
 
-class StreamResultSchema(OpenSchema):
+class MeteredStreamResultSchema(OpenSchema):
     """A stream of an answer."""
 
     temperature = number("Where known.")
@@ -149,21 +165,27 @@ class StreamResultSchema(OpenSchema):
     compressibility = number("Where it is not 1.")
     volumetric_flow = number("At the stream's conditions; null where it is not known.")
     volume = number("Of a batch, at its conditions; null where it is not known.")
-    total = fields.Nested(NumberSchema, required=True)
+    total = number("Null where the readings do not tell it.", required=True)
     phase_total = number("Of the stream's own phase, where substances outside it travel along.")
-    species = numbers_by_name(SpeciesFlowSchema)
+    species = numbers_by_name(SpeciesFlowSchema, required=True)
+
+
+class StreamResultSchema(MeteredStreamResultSchema):
+    """What flows in or out, all streams together."""
+
+    streams = numbers_by_name(MeteredStreamResultSchema, "Each of several, by its id or its place.")
 
 
 def write_stream(
     edge: EdgeMap,
     names: Sequence[str],
     flows: FloatArray,
-    in_phase: BoolArray,
+    in_phase: BoolArray | None,
     *,
     batch: bool,
-    volume: float | None,
-    temperature: float | None,
-    pressure: float | None,
+    volume: float | None = None,
+    temperature: float | None = None,
+    pressure: float | None = None,
     compressibility: float = 1.0,
     fractions: bool = True,
     u: FloatArray | None = None,
@@ -177,7 +199,8 @@ def write_stream(
     names : sequence of str, length S
     flows : ndarray, shape (S,)
         mol/s (batch: mol).
-    in_phase : ndarray of bool, shape (S,)
+    in_phase : ndarray of bool, shape (S,), or None
+        None: streams of several phases together, which have flows and nothing else.
     batch : bool
     volume : float or None
         m3/s (batch: m3).
@@ -199,9 +222,10 @@ def write_stream(
     if volume is not None:
         concentration = edge.scales["concentration"]
         of_concentration, per_volume = concentration.unit, concentration.factor * volume
-    inside, values = in_phase.tolist(), flows.tolist()
+    values = flows.tolist()
+    inside = [False] * len(values) if in_phase is None else in_phase.tolist()
     total = phase_total = sum(values)
-    if not all(inside):
+    if in_phase is not None and not all(inside):
         phase_total = sum(compress(values, inside))
     species: Json = {}
     for name, flow, within in zip(names, values, inside, strict=True):
@@ -226,7 +250,7 @@ def write_stream(
         stream["pressure"] = edge.number(pressure, "pressure")
     if compressibility != 1.0:
         stream["compressibility"] = edge.number(compressibility, "dimensionless")
-    if unit != "1":
+    if unit != "1" and in_phase is not None:
         # Per mole of key there is no volumetric flow, though there are concentrations.
         stream[words.volume] = (
             None if volume is None else edge.number(volume, words.volume_dimension)

@@ -255,7 +255,7 @@ case(
 )
 LIQUID = changed(
     READ,
-    feed={"phase": "liquid", "flows": {"CO": "1 mol/s", "H2O": "3 mol/s"}},
+    feed={"phase": "liquid", "flows": {"CO": "1 mol/s", "H2O": "3 mol/s", "N2": "1 mol/s"}},
     outlet__phase="liquid",
 )
 case(
@@ -329,6 +329,11 @@ case(
         },
     ),
     "/outlet/analysis/values/CO2",
+)
+case(
+    "not-in-account",
+    conversion(outlet__analysis__removed=["H20"]),
+    "/outlet/analysis/removed/0",
 )
 case(
     "element-not-named",
@@ -459,7 +464,9 @@ case(
 case("target-form", volume(target={"species": "R"}), "/target")
 case(
     "target-does-not-move",
-    volume(feed__concentrations__N2="1 mol/l", target={"species": "N2", "concentration": "2 mol/l"}),
+    volume(
+        feed__concentrations__N2="1 mol/l", target={"species": "N2", "concentration": "2 mol/l"}
+    ),
     "/target",
 )
 case(

@@ -1,0 +1,101 @@
+"""Readings of a request as measurements of the core, each with an uncertainty."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Collection
+from dataclasses import dataclass, field
+
+from core.errors import Note, Subject
+from core.streams.default_uncertainty import DEFAULT_UNCERTAINTIES
+from core.streams.metered import Measurement
+from schemas.edge import Measured, RequestReader
+
+
+@dataclass
+class Readings:
+    """Makes measurements, and remembers what had to be taken for granted.
+
+    ``defaults`` keeps which readings have a default uncertainty in place of a
+    stated one, by kind of reading, and how large it is over the reading: an
+    answer that used them lists them.
+    """
+
+    reader: RequestReader
+    defaults: dict[str, list[tuple[Subject, bool]]] = field(default_factory=dict)
+    instruments: dict[str, list[Subject]] = field(default_factory=dict)
+
+    def measurement(
+        self, found: Measured | None, subject: Subject, kind: str
+    ) -> Measurement | None:
+        """Return a reading with its uncertainty, stated or the default of its kind."""
+        if found is None:
+            return None
+        u = found.u
+        if found.u_shared is not None:
+            # Of one sample the two parts cannot be told apart; together they are its uncertainty.
+            u = math.hypot(u or 0.0, found.u_shared)
+            if found.instrument is not None and found.u_shared > 0:
+                self._shared_by(found.instrument, subject)
+        if u is None and found.bound is None:
+            u = DEFAULT_UNCERTAINTIES[kind].of(found.value)
+            swamped = u > abs(found.value) > 0
+            self.defaults.setdefault(kind, []).append((subject, swamped))
+        return Measurement(found.value, u or 0.0, subject, found.bound)
+
+    def _shared_by(self, instrument: str, subject: Subject) -> None:
+        others = self.instruments.setdefault(instrument, [])
+        others.append(subject)
+        if len(others) == 2:
+            self.reader.notes.append(
+                Note(
+                    "instrument-taken-as-independent",
+                    f"readings of the instrument {instrument} share an error; this release takes"
+                    " their errors as independent of each other",
+                    "warning",
+                    subject,
+                )
+            )
+
+    def default_notes(self, used: Collection[Subject]) -> list[Note]:
+        """Return the assumptions that the default uncertainties of the readings used are."""
+        notes = []
+        for kind, entries in self.defaults.items():
+            there = [(self._pointer(s), swamped) for s, swamped in entries if _counts(s, used)]
+            if not there:
+                continue
+            words = DEFAULT_UNCERTAINTIES[kind].words
+            listed = _listed([pointer for pointer, _ in there])
+            notes.append(
+                Note(
+                    "default-uncertainty",
+                    f"{words} (common practice), where none is stated: {listed}",
+                )
+            )
+            large = [pointer for pointer, swamped in there if swamped]
+            if large:
+                notes.append(
+                    Note(
+                        "default-uncertainty-large",
+                        "the default uncertainty is larger than the reading itself; state 'u':"
+                        f" {_listed(large)}",
+                        "warning",
+                    )
+                )
+        return notes
+
+    def _pointer(self, subject: Subject) -> str:
+        return self.reader.places[subject][0]
+
+
+def _counts(subject: Subject, used: Collection[Subject]) -> bool:
+    """Whether a reading is one of those used, or stands at the meter of one."""
+    if subject in used:
+        return True
+    return subject[-2:-1] == ("meter",) and (*subject[:-2], "flow") in used
+
+
+def _listed(pointers: list[str], most: int = 8) -> str:
+    shown = ", ".join(pointers[:most])
+    left = len(pointers) - most
+    return f"{shown} and {left} more" if left > 0 else shown
