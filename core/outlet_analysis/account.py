@@ -162,7 +162,8 @@ def build_account(problem: AccountProblem) -> Account:
     Raises
     ------
     Refused
-        ``key-not-fed``: no feed stream holds the key. ``nowhere-to-leave``:
+        ``key-not-fed``: no feed stream holds the key. ``key-not-consumed``: no
+        reaction does so, and there is an outlet. ``nowhere-to-leave``:
         none of several outlet streams can hold a substance. Also what
         :func:`core.outlet_analysis.readings.read` raises.
     """
@@ -194,6 +195,14 @@ def _check(problem: AccountProblem) -> None:
             ("key",),
             "found the key {key}, which no feed stream holds; the conversion counts what is fed"
             " of it, so choose a substance of the feed or state its flow",
+            key=name,
+        )
+    if problem.outlet and not (problem.reactions.nu[:, problem.key] < 0).any():
+        raise refuse(
+            "key-not-consumed",
+            ("key",),
+            "found the key {key}, which no reaction as written consumes; name a reactant as the"
+            " key, or write the reaction the other way round",
             key=name,
         )
 

@@ -68,6 +68,7 @@ def remarks(found: Estimate) -> Iterator[Note]:
         )
     yield from _placement(account)
     yield from _below_zero(found, counted)
+    yield from _backwards(found, counted)
     if samples is None:
         numbers = found.readings.suspect_set
         sizes = np.bincount(numbers[numbers > 0], minlength=1)[1:]
@@ -138,6 +139,31 @@ def _below_zero(found: Estimate, counted: Counted) -> Iterator[Note]:
                     subject=(*subject, names[i]),
                     facts={"substance": names[i], "way": way, **facts},
                 )
+
+
+def _backwards(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """One-way reactions whose extent is below zero by more than twice its uncertainty."""
+    reactions = found.account.problem.reactions
+    extents = found.extents
+    if reactions.rank < len(reactions.reactions) or not (extents < 0).any():
+        return
+    scale = np.abs(found.feed_flows).max(axis=-1, keepdims=True)
+    u = found.u_of(found.account.extent_map)
+    below = extents < -np.maximum(2 * u, 1e-9 * scale)
+    for j in np.flatnonzero(below.any(axis=0)).tolist():
+        if reactions.reactions[j].reversible:
+            continue
+        name = reactions.reactions[j].id
+        words, facts = counted(below[:, j])
+        yield Note(
+            "one-way-reaction-backwards",
+            "the readings have the one-way reaction {reaction} run backwards by more than twice"
+            " the uncertainty of its extent: look for a wrong reading, basis or removal, or write"
+            " it as reversible (<=>)" + words,
+            severity="warning",
+            subject=("reactions", name),
+            facts={"reaction": name, **facts},
+        )
 
 
 def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:

@@ -233,14 +233,24 @@ def test_a_reaction_that_makes_the_key_is_told_apart() -> None:
 
 
 def test_products_of_a_reaction_written_backwards() -> None:
-    found, _ = answer(shift_problem())
-    problem = found.account.problem
-    backwards = reactions_of({"r1": "CO2 + H2 <=> CO + H2O"}, list(problem.reactions.names))
-    _, results = answer(replace(problem, reactions=backwards))
-    names = {backwards.names[i] for i in results.yields.products}
-    assert names == {"CO2", "H2"}
-    assert_allclose(results.conversion.value, 0.74, atol=1e-4)
-    assert_allclose(results.yields.yields.value, 0.74, atol=1e-4)
+    # Carbon monoxide shifted: the reversible reaction that makes the key runs to its left.
+    reactions = reactions_of(
+        {"m": "CO + 2 H2 -> CH4O", "w": "CO2 + H2 <=> CO + H2O"}, ["CO", "H2O", "CO2", "H2", "N2"]
+    )
+    fed = {"CO": 30.0, "H2O": 20.0, "CO2": 5.0, "H2": 40.0, "N2": 5.0}
+    left = np.array([fed.get(n, 0.0) for n in reactions.names])
+    left = left + np.array([6.0, -9.0]) @ reactions.nu
+    wet = {n: (f / left.sum(), 1e-3) for n, f in zip(reactions.names, left, strict=True)}
+    outlet = stream_of(reactions, "outlet", analysis=analysis_of(reactions, "outlet", wet))
+    feed = stream_of(reactions, "feed", flows=fed)
+    found, results = answer(account(reactions, "CO", feed, outlet))
+    of = products(results, found)
+    assert set(of) == {"CH4O", "CO2", "H2"}
+    assert_allclose(results.conversion.value, 0.5, rtol=1e-9)
+    assert_allclose(of["CH4O"], (1.0, 6 / 15), rtol=1e-9)
+    assert_allclose(of["CO2"], (1.0, 9 / 15), rtol=1e-9)
+    assert results.key_consumed_by is not None
+    assert_allclose(results.key_consumed_by.value, [0.4, 0.6], rtol=1e-9)
 
 
 def test_dependent_reactions_leave_flows_unique_and_extents_not() -> None:

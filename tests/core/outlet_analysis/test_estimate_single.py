@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -517,6 +518,34 @@ def test_the_key_must_be_fed() -> None:
     feed = stream_of(SHIFT, "feed", flows={"H2O": 1.0, "N2": 1.0})
     fault = fault_of(account(SHIFT, "CO", feed, stream_of(SHIFT, "outlet", total=(1.0, 0.1))))
     assert fault.code == "key-not-fed"
+
+
+def test_the_key_must_be_consumed_by_a_reaction_as_written() -> None:
+    problem = shift(SHIFT_OUTLET)
+    for name in ("N2", "CO2"):
+        fault = fault_of(replace(problem, key=SHIFT.index(name)))
+        assert fault.code == "key-not-consumed"
+        assert fault.subject == ("key",)
+        assert fault.facts["key"] == name
+        # What is fed of it can be asked for all the same.
+        assert estimate_feed(SHIFT, SHIFT.index(name), problem.feed).degrees_of_freedom == 0
+
+
+def test_a_one_way_reaction_that_runs_backwards_is_remarked() -> None:
+    # More carbon monoxide leaves than came in: 130 kmol/h in 490 - 10 of dry gas.
+    values = {"CO": (130 / 480, 0.001), "CO2": (50 / 480, 0.001)}
+    problem = shift(values)
+    assert "one-way-reaction-backwards" not in {n.code for n in estimate(problem).notes}
+    reactions = reactions_of({"shift": "CO + H2O -> CO2 + H2"}, list(SHIFT_FEED))
+    found = estimate(replace(problem, reactions=reactions))
+    (note,) = [n for n in found.notes if n.code == "one-way-reaction-backwards"]
+    assert note.subject == ("reactions", "shift")
+    assert note.severity == "warning"
+    assert note.facts["reaction"] == "shift"
+    # Within twice its uncertainty of nothing it is nothing.
+    idle = estimate(replace(shift({"CO": (0.2455, 0.001)}), reactions=reactions))
+    assert idle.extents[0] < 0
+    assert "one-way-reaction-backwards" not in {n.code for n in idle.notes}
 
 
 def leaving(**more: Any) -> AccountProblem:
