@@ -77,12 +77,17 @@ def serve(**chosen: Any) -> None:
     server.Application(server.Settings(**chosen), _greet).run()
 
 
-def _greet(address: str) -> None:
-    logs.logger().info("listening", address=address)
-    # On standard error, for whoever looks; the log has standard output to itself.
+def banner(address: str) -> str:
+    """Return what is said on standard error once the server listens, for whoever looks."""
     from schemas.examples import paste
 
-    click.echo(f"\nMolwright listens on {address}. Try:\n\n{paste(address)}", err=True)
+    return f"\nMolwright listens on {address}. Try:\n\n{paste(address)}"
+
+
+def _greet(address: str) -> None:
+    logs.logger().info("listening", address=address)
+    # The log has standard output to itself.
+    click.echo(banner(address), err=True)
 
 
 @main.command()
