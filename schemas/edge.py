@@ -16,7 +16,7 @@ from typing import Any, NamedTuple
 
 from core.constants import STANDARD_ATMOSPHERE
 from core.dimensions import DIMENSIONS, Exponents
-from core.errors import Amount, Fact, Fault, Note, Refused, Subject
+from core.errors import Amount, Fact, Fault, Note, Readings, Refused, Subject
 from schemas.quantities import Bound, RawQuantity
 from schemas.shape import LocatedFault, MeaningError, child
 from schemas.units import (
@@ -31,6 +31,9 @@ from schemas.units import (
 )
 
 Json = dict[str, Any]
+
+OFTEN_GAUGE = frozenset({"mmH2O", "cmH2O", "mH2O", "inH2O", "psi"})
+"""Units of pressure in which a plant's instruments most often show what is above the atmosphere."""
 
 DIFFERENCES = {"temperature": "temperature_difference", "pressure": "pressure_difference"}
 
@@ -145,9 +148,14 @@ class EdgeMap:
 
     def say(self, fact: Fact) -> str:
         """Return a fact in words, amounts in the units of the request."""
+        if isinstance(fact, Readings):
+            return ", ".join(self.place(subject).pointer for subject in fact.subjects)
         if not isinstance(fact, Amount):
             return str(fact)
         number = self.number(fact.value, fact.dimension)
+        if number["value"] < 0 and fact.dimension == "pressure":
+            # An absolute pressure below the atmosphere is an odd thing to read in a gauge unit.
+            number = self.difference(fact.value, number["unit"])
         unit = "" if number["unit"] == "1" else f" {number['unit']}"
         return f"{number['value']:.6g}{unit}"
 
@@ -222,6 +230,8 @@ class RequestReader:
     """
 
     atmospheric_pressure: float = STANDARD_ATMOSPHERE
+    atmosphere_known: bool = False
+    """Whether it was stated, or the assumption is listed already."""
     places: dict[Subject, Placed] = field(default_factory=dict)
     used: dict[str, str] = field(default_factory=dict)
     faults: list[LocatedFault] = field(default_factory=list)
@@ -240,6 +250,7 @@ class RequestReader:
             )
             if stated is not None:
                 reader.atmospheric_pressure = stated.value
+                reader.atmosphere_known = True
                 reader.used.clear()
         return reader
 
@@ -304,6 +315,8 @@ class RequestReader:
         if not _within(value, above, at_least):
             self.fault("impossible-value", pointer, _out_of_range(raw, dimension, above, at_least))
             return None
+        if dimension == "pressure":
+            self._remark_on_pressure(raw, unit, subject)
         if dimension not in self.used:
             self.used[dimension] = raw.unit
         if dimension in DIFFERENCES:
@@ -315,6 +328,28 @@ class RequestReader:
         if raw.u_shared is not None:
             shared = float(difference_to_si(raw.u_shared, unit))
         return Measured(value, dimension, raw.unit, u, shared, raw.instrument, raw.bound)
+
+    def _remark_on_pressure(self, raw: RawQuantity, unit: Unit, subject: Subject) -> None:
+        """List what is taken for granted of a pressure: the atmosphere, or that it is absolute."""
+        if unit.gauge and not self.atmosphere_known:
+            self.atmosphere_known = True
+            self.assumed.append(
+                Note(
+                    "standard-atmosphere",
+                    "gauge pressures are read with an atmospheric pressure of 101.325 kPa, since"
+                    " 'atmospheric_pressure' is not stated",
+                    subject=subject,
+                )
+            )
+        elif unit.text in OFTEN_GAUGE:
+            self.assumed.append(
+                Note(
+                    "pressure-taken-as-absolute",
+                    f"{raw.text} is taken as an absolute pressure; a gauge reading is written with"
+                    f" a gauge unit, such as '{unit.text}(g)' or 'barg'",
+                    subject=subject,
+                )
+            )
 
     def constant(
         self,

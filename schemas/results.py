@@ -4,13 +4,18 @@ from __future__ import annotations
 
 from typing import Any
 
-from marshmallow import Schema, fields
+from marshmallow import INCLUDE, Schema, fields
 
 from schemas.fields import Map, describe
 
 
 class OpenSchema(Schema):
     """An object of an answer; later releases may add members."""
+
+    class Meta:
+        """Marshmallow's settings."""
+
+        unknown = INCLUDE
 
 
 class NumberSchema(OpenSchema):
@@ -20,7 +25,8 @@ class NumberSchema(OpenSchema):
     unit = fields.String(required=True, metadata=describe("'1' where it is dimensionless."))
     u = fields.Float(metadata=describe("Standard uncertainty, in the same unit."))
     interval = fields.List(
-        fields.Float(), metadata=describe("Coverage interval: its two ends.", minItems=2)
+        fields.Float(),
+        metadata=describe("Coverage interval: its two ends.", minItems=2, maxItems=2),
     )
     coverage = fields.Float(metadata=describe("Coverage probability of the interval."))
 
@@ -31,9 +37,10 @@ class NoteSchema(OpenSchema):
     code = fields.String(required=True)
     detail = fields.String(required=True)
     severity = fields.String(
+        required=True,
         metadata=describe(
             "A caution concerns what can hurt someone.", enum=["info", "warning", "caution"]
-        )
+        ),
     )
     pointer = fields.String(metadata=describe("The place in the request that it concerns."))
 

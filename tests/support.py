@@ -63,7 +63,7 @@ def _closed(node: Any, *, named: bool = False) -> Any:
     if isinstance(node, dict):
         done = {k: _closed(v, named=k in ("properties", "schemas")) for k, v in node.items()}
         is_object = node.get("type") == "object" and "properties" in node
-        if not named and is_object and "additionalProperties" not in node:
+        if not named and is_object and node.get("additionalProperties", True) is True:
             done["additionalProperties"] = False
         return done
     return [_closed(v) for v in node] if isinstance(node, list) else node
