@@ -166,33 +166,66 @@ def _component_name(schema: Any) -> str:
 
 
 def _described(op: Operation) -> Json:
-    described: Json = {"operationId": op.name, "summary": op.summary, "responses": _responses(op)}
+    described: Json = {
+        "operationId": op.name,
+        "summary": op.summary,
+        "tags": ["calculations" if op.request else "the service itself"],
+        "responses": _responses(op),
+    }
     parameters: list[Json] = [
-        {"name": name, "in": "path", "required": True, "schema": {"type": "string"}}
+        {
+            "name": name,
+            "in": "path",
+            "required": True,
+            "description": "A code of a problem or a note.",
+            "schema": {"type": "string"},
+        }
         for name in op.parameters
     ]
-    if JSON in op.media_types and op.name not in ("contract", "health", "ready"):
+    if JSON in op.media_types and op.name not in UNVARIED:
         parameters.append(
             {
                 "name": "pretty",
                 "in": "query",
                 "description": "1 indents the answer.",
-                "schema": {"type": "string", "enum": ["0", "1"]},
+                "schema": {"type": "string", "enum": ["0", "1"], "default": "0"},
             }
         )
-    if parameters:
-        described["parameters"] = parameters
-    if op.request is not None:
-        examples = {
-            example.name: {"summary": example.title, "value": example.request}
-            for example in EXAMPLES
-            if example.operation == op.name
+    parameters.append(
+        {
+            "name": "X-Request-ID",
+            "in": "header",
+            "description": "Names the request in the log and in the answer; else one is made.",
+            "schema": {"type": "string", "pattern": "^[A-Za-z0-9._-]{1,64}$"},
         }
+    )
+    described["parameters"] = parameters
+    if op.request is not None:
         described["requestBody"] = {
             "required": True,
-            "content": {JSON: {"schema": op.request, "examples": examples}},
+            "content": {
+                JSON: {
+                    "schema": op.request,
+                    "examples": {
+                        example.name: {"summary": example.title, "value": example.request}
+                        for example in EXAMPLES
+                        if example.operation == op.name
+                    },
+                }
+            },
         }
     return described
+
+
+UNVARIED = ("contract", "health", "ready")
+"""Operations that answer the same to everybody."""
+
+REQUEST_ID = {
+    "X-Request-ID": {
+        "description": "The request's own, or the one it was given.",
+        "schema": {"type": "string"},
+    }
+}
 
 
 def _responses(op: Operation) -> Json:
@@ -204,25 +237,44 @@ def _responses(op: Operation) -> Json:
             content[media]["examples"] = {
                 example.name: {"summary": example.title, "value": example.answer()}
                 for example in EXAMPLES
-                if example.operation == op.name
+                if example.operation == op.name and example.status == 200
             }
-    problem = {PROBLEM_JSON: {"schema": ProblemSchema}}
-    refusals = {"406": "no form that the client accepts"}
+    responses: Json = {
+        "200": {"description": op.summary, "headers": REQUEST_ID, "content": content}
+    }
+    for status, meaning in sorted(_refusals(op).items()):
+        problem: Json = {"schema": ProblemSchema}
+        examples = {
+            example.name: {"summary": example.title, "value": example.answer()}
+            for example in EXAMPLES
+            if example.operation == op.name and str(example.status) == status
+        }
+        if examples:
+            problem["examples"] = examples
+        responses[status] = {
+            "description": meaning,
+            "headers": REQUEST_ID,
+            "content": {PROBLEM_JSON: problem},
+        }
+    return responses
+
+
+def _refusals(op: Operation) -> dict[str, str]:
+    refusals = {"500": "a fault of the service"}
+    if op.name in ("health", "ready"):
+        return refusals
+    refusals["406"] = "no form that the client accepts"
+    refusals["400"] = "a query parameter that is not known"
     if op.request is not None:
         refusals |= {
-            "400": "the document breaks this contract",
+            "400": "the document breaks this contract, or a query parameter is not known",
             "413": "the body is too large",
-            "415": "the body is not declared as JSON",
+            "415": "the body is not declared as JSON in UTF-8",
             "422": "the document obeys this contract and cannot be computed",
         }
-    elif op.name not in ("health", "ready"):
-        refusals["400"] = "a query parameter that is not known"
     if op.parameters:
-        refusals["404"] = "no such problem code"
-    responses: Json = {"200": {"description": op.summary, "content": content}}
-    for status, meaning in sorted(refusals.items()):
-        responses[status] = {"description": meaning, "content": problem}
-    return responses
+        refusals["404"] = "no such code"
+    return refusals
 
 
 def render(document: Json) -> bytes:

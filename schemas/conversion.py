@@ -26,16 +26,21 @@ from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import StreamResultSchema, is_batch, read_conditions, words_of, write_stream
 from schemas.fields import Choice, Map, Number, Text, describe
-from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
-from schemas.shape import ClosedSchema, child, load
+from schemas.shape import ClosedSchema, child
 from schemas.streams import Side, StreamReader, StreamSchema, substances_of
 
 
 class YieldsSchema(ClosedSchema):
     """What yields and selectivities count by."""
 
-    basis = Choice("key", "element", load_default="key")
+    basis = Choice(
+        "key",
+        "element",
+        load_default="key",
+        metadata=describe("Moles of key, or atoms of an element that the key holds."),
+    )
     element = Text(
         pattern=r"^[A-Z][a-z]?$",
         wanted="a symbol such as 'C' is allowed",
@@ -115,17 +120,10 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    request = load(_REQUEST, document)
-    reader = RequestReader.of(request)
-    streams = [(request[side], f"/{side}") for side in ("feed", "outlet")]
-    reactions = read_reactions(request, reader, streams)
-    asked = _read_problem(request, reader, reactions)
-    edge = reader.finish(request.get("report_in"))
-    assert asked is not None
-    return asked, edge
+    return read_request(_REQUEST, document, ("feed", "outlet"), _read_question)
 
 
-def _read_problem(
+def _read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> ConversionQuestion | None:
     key = read_key(request, reader, reactions)
@@ -230,9 +228,12 @@ class ReconciledReadingSchema(OpenSchema):
     """A reading beside what the account makes of it."""
 
     reading = fields.String(required=True, metadata=describe("Its JSON Pointer in the request."))
-    measured = number(required=True)
+    measured = number("As it was read, with its uncertainty.", required=True)
     reconciled = number("With the uncertainty that the whole account leaves.", required=True)
-    adjustment_over_u = number("Standard normal where nothing is wrong; null without redundancy.")
+    adjustment_over_u = number(
+        "(measured - reconciled)/sqrt(u^2 - u_reconciled^2): standard normal where nothing is"
+        " wrong; null without redundancy."
+    )
     redundancy = number("0: no other reading checks it; 1: it is known from the others.")
     smallest_detectable_error = number(
         "Found nine times in ten at one false alarm in twenty; null without redundancy."

@@ -24,6 +24,8 @@ class Example:
     operation: str
     title: str
     request: Any
+    status: int = 200
+    """What it is answered with: 200, or the status of a refusal."""
 
     @property
     def answer_file(self) -> Traversable:

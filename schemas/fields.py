@@ -38,7 +38,7 @@ Converter = Callable[[fields.Field[Any]], Published]
 
 def describe(text: str, **more: Any) -> dict[str, Any]:
     """Return the metadata that puts a description into the contract."""
-    return {"description": text, **more}
+    return {"description": text, **more} if text else more
 
 
 class StrictField(fields.Field[Any]):
@@ -142,7 +142,9 @@ class Choice(StrictField):
         return value
 
     def published(self, convert: Converter) -> Published:
-        """Return the enumeration."""
+        """Return the enumeration, or the one value."""
+        if len(self.choices) == 1:
+            return {"type": "string", "const": self.choices[0]}
         return {"type": "string", "enum": list(self.choices)}
 
 
@@ -317,7 +319,7 @@ class UncertainSchema(ClosedSchema):
 
     requires = ', such as {"value": 12.5, "unit": "kmol/h"}'
 
-    value = Number(required=True)
+    value = Number(required=True, metadata=describe("In its unit."))
     unit = Text(
         pattern=r"^[^\x00-\x1f]{0,40}$",
         wanted=f"a unit is at most {MAX_UNIT_LENGTH} characters long",
@@ -403,7 +405,12 @@ class Tagged(StrictField):
 
     def published(self, convert: Converter) -> Published:
         """Return the alternatives, one for each form."""
-        return {"oneOf": [convert(field) for field in self.nested]}
+        forms = [convert(field) for field in self.nested]
+        mapping = {name: form["$ref"] for name, form in zip(self.forms, forms, strict=True)}
+        return {
+            "oneOf": forms,
+            "discriminator": {"propertyName": self.tag, "mapping": mapping},
+        }
 
 
 def quantity_components() -> dict[str, Published]:

@@ -35,8 +35,10 @@ from schemas.units import spell
 class ArrheniusSchema(ClosedSchema):
     """k = pre_exponential T^temperature_exponent exp(-activation_energy/(R T))."""
 
-    pre_exponential = Quantity(required=True)
-    activation_energy = Quantity(required=True)
+    pre_exponential = Quantity(
+        required=True, metadata=describe("In the unit of k.", examples=["1e13 1/s"])
+    )
+    activation_energy = Quantity(required=True, metadata=describe("", examples=["250 kJ/mol"]))
     temperature_exponent = Number(
         at_least=-10,
         at_most=10,
@@ -50,9 +52,12 @@ class ArrheniusSchema(ClosedSchema):
 class ConstantAtSchema(ClosedSchema):
     """A constant known at one temperature, and how it changes with it."""
 
-    at = Quantity(required=True, metadata=describe("The temperature at which it holds."))
-    constant = Quantity(required=True)
-    activation_energy = Quantity(required=True)
+    at = Quantity(
+        required=True,
+        metadata=describe("The temperature at which it holds.", examples=["1050 K"]),
+    )
+    constant = Quantity(required=True, metadata=describe("k there.", examples=["2.4 1/s"]))
+    activation_energy = Quantity(required=True, metadata=describe("", examples=["250 kJ/mol"]))
 
 
 def rate_constant(**kwargs: object) -> OneOf:
@@ -70,7 +75,14 @@ def rate_constant(**kwargs: object) -> OneOf:
 class EquilibriumConstantSchema(ClosedSchema):
     """An equilibrium constant with what it needs to be used away from where it was stated."""
 
-    constant = Quantity(required=True)
+    constant = Quantity(
+        required=True,
+        metadata=describe(
+            "Of the equation as written: a power of pressure is K_p, one of concentration K_c, a"
+            " number the thermodynamic constant.",
+            examples=["0.1 mol/l", "12 bar^-0.5", 2.0],
+        ),
+    )
     at = Quantity(metadata=describe("The temperature at which it holds; with 'enthalpy'."))
     enthalpy = Quantity(
         metadata=describe("Standard enthalpy of the reaction as written, per mole of extent.")
@@ -89,8 +101,14 @@ class AffinitySchema(ClosedSchema):
 class ReverseSchema(ClosedSchema):
     """A reverse rate with its own constant and orders."""
 
-    constant = rate_constant(required=True)
-    orders = Map(Number(at_least=-10, at_most=10), at_least=0, at_most=20, required=True)
+    constant = rate_constant(required=True, metadata=describe("Of the reverse rate."))
+    orders = Map(
+        Number(at_least=-10, at_most=10),
+        at_least=0,
+        at_most=20,
+        required=True,
+        metadata=describe("Of the reverse rate, by substance.", examples=[{"R": 1}]),
+    )
 
 
 class RateSchema(ClosedSchema):
@@ -102,9 +120,21 @@ class RateSchema(ClosedSchema):
             " is not 1."
         )
     )
-    per = Choice("fluid-volume", required=True)
-    driving = Choice("concentration", "partial-pressure", "mole-fraction", required=True)
-    orders = Map(Number(at_least=-10, at_most=10), at_least=0, at_most=20, required=True)
+    per = Choice("fluid-volume", required=True, metadata=describe("What the rate is counted by."))
+    driving = Choice(
+        "concentration",
+        "partial-pressure",
+        "mole-fraction",
+        required=True,
+        metadata=describe("The quantity whose powers the rate follows."),
+    )
+    orders = Map(
+        Number(at_least=-10, at_most=10),
+        at_least=0,
+        at_most=20,
+        required=True,
+        metadata=describe("By substance; one left out has order 0.", examples=[{"A": 1}]),
+    )
     constant = rate_constant(
         required=True, metadata=describe("Its unit is checked against orders, driving and per.")
     )
@@ -119,8 +149,12 @@ class RateSchema(ClosedSchema):
             " longer rises."
         ),
     )
-    effectiveness = Number(above=0, at_most=10, load_default=1.0)
-    activity = Number(above=0, at_most=10, load_default=1.0)
+    effectiveness = Number(
+        above=0, at_most=10, load_default=1.0, metadata=describe("A factor on the rate.")
+    )
+    activity = Number(
+        above=0, at_most=10, load_default=1.0, metadata=describe("A factor on the rate.")
+    )
 
 
 def equilibrium_constant(**kwargs: object) -> OneOf:

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Sequence
+from typing import TypeVar
 
 import numpy as np
-from marshmallow import fields
+from marshmallow import Schema, fields
 
 from core.dimensions import DIMENSIONS
 from core.errors import Refused, Subject
@@ -13,11 +14,14 @@ from core.reactions.build import ReactionInput, build_reaction_set
 from core.reactions.reaction_set import ReactionSet
 from core.substances.formula import make_substance
 from core.substances.substance import Substance
-from schemas.edge import Json, RequestReader
+from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.fields import Choice, List, Map, OneOf, Quantity, Text, describe
 from schemas.rates import RateSchema, equilibrium_constant
-from schemas.shape import ClosedSchema, child
+from schemas.shape import ClosedSchema, child, load
 from schemas.streams import substances_of
+from schemas.units import DEFAULT_UNITS
+
+T = TypeVar("T")
 
 MAX_REACTIONS = 50
 EQUATION_PATTERN = r"^[^\x00-\x1f]{1,400}$"
@@ -46,7 +50,13 @@ class ReactionSchema(ClosedSchema):
 
     id = Text(metadata=describe("Default: r1, r2, ... by place."))
     equation = Text(
-        pattern=EQUATION_PATTERN, wanted="1 to 400 characters are allowed", required=True
+        pattern=EQUATION_PATTERN,
+        wanted="1 to 400 characters are allowed",
+        required=True,
+        metadata=describe(
+            "One arrow: -> or → one way, <=>, ⇌ or = both ways; coefficients may be fractions.",
+            examples=["SO2 + 1/2 O2 <=> SO3"],
+        ),
     )
     rate = fields.Nested(RateSchema, metadata=describe("Used by reactor questions."))
     equilibrium_constant = equilibrium_constant(
@@ -58,7 +68,11 @@ REPORTABLE = tuple(name for name in DIMENSIONS if name != "dimensionless")
 
 ReportUnitsSchema = ClosedSchema.from_dict(
     {
-        name: Text(pattern=r"^[^\x00-\x1f]{1,40}$", wanted="a unit is 1 to 40 characters long")
+        name: Text(
+            pattern=r"^[^\x00-\x1f]{1,40}$",
+            wanted="a unit is 1 to 40 characters long",
+            metadata=describe(f"Default: {DEFAULT_UNITS[name]}, or as in the request."),
+        )
         for name in REPORTABLE
     },
     name="ReportUnitsSchema",
@@ -79,11 +93,20 @@ class AccountSchema(ClosedSchema):
         ),
         at_most=MAX_REACTIONS,
         required=True,
-        metadata=describe("Equations, or objects."),
+        metadata=describe(
+            "Equations, or objects with a rate or an equilibrium constant.",
+            examples=[["SO2 + 1/2 O2 <=> SO3"]],
+        ),
     )
-    key = Text(required=True, metadata=describe("The key reactant."))
+    key = Text(
+        required=True,
+        metadata=describe(
+            "The reactant that conversion counts; it need not be the limiting one.",
+            examples=["CO"],
+        ),
+    )
     atmospheric_pressure = Quantity(
-        metadata=describe("Serves every gauge pressure; default 101.325 kPa.")
+        metadata=describe("Serves every gauge pressure.", default="101.325 kPa")
     )
     report_in = fields.Nested(
         ReportUnitsSchema, metadata=describe("Units to report in, by dimension.")
@@ -166,6 +189,40 @@ def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
     except Refused as refused:
         reader.collect(refused)
         return None
+
+
+def read_request(
+    schema: Schema,
+    document: object,
+    streams: Sequence[str],
+    build: Callable[[Json, RequestReader, ReactionSet], T | None],
+) -> tuple[T, EdgeMap]:
+    """Return what a request asks for, and its edge map.
+
+    Parameters
+    ----------
+    schema : Schema
+        Of the request.
+    document : object
+        The parsed body.
+    streams : sequence of str
+        Members that are streams.
+    build : callable
+        Makes the question from the request, its reader and its reactions; None
+        after a fault that it kept.
+
+    Raises
+    ------
+    ShapeError, MeaningError
+        Of shape with every fault of shape; else of meaning with every other.
+    """
+    request = load(schema, document)
+    reader = RequestReader.of(request)
+    reactions = read_reactions(request, reader, [(request[name], f"/{name}") for name in streams])
+    question = build(request, reader, reactions)
+    edge = reader.finish(request.get("report_in"))
+    assert question is not None
+    return question, edge
 
 
 def read_key(document: Json, reader: RequestReader, reactions: ReactionSet) -> int:

@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from marshmallow import fields
 
+from core.errors import Note
 from core.mole_account.stoichiometric_table import (
     OutletConditions,
     Role,
@@ -26,9 +27,9 @@ from schemas.feed import (
     write_stream,
 )
 from schemas.fields import Choice, List, Map, Number, Quantity, describe
-from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
-from schemas.shape import ClosedSchema, child, load
+from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
 
 MAX_CONVERSIONS = 1000
@@ -37,30 +38,34 @@ MAX_CONVERSIONS = 1000
 class OutletConditionsSchema(ClosedSchema):
     """Conditions of the outlet; each left out is that of the feed."""
 
-    temperature = Quantity()
-    pressure = Quantity()
-    compressibility = Number(above=0, at_most=10)
+    temperature = Quantity(metadata=describe("", examples=["600 degC"]))
+    pressure = Quantity(metadata=describe("", examples=["0.22 barg"]))
+    compressibility = Number(above=0, at_most=10, metadata=describe("Z of a gas."))
 
 
 class StoichiometricTableRequest(AccountSchema):
     """A feed, and the conversions or extents to keep its account at."""
 
-    feed = fields.Nested(StreamSchema, required=True)
+    feed = fields.Nested(
+        StreamSchema, required=True, metadata=describe("What is fed, or charged as a batch.")
+    )
     conversions = List(
         Quantity(),
         at_most=MAX_CONVERSIONS,
-        metadata=describe("Of the key. Exactly one of conversions and extents."),
+        metadata=describe(
+            "Of the key. Exactly one of conversions and extents.", examples=[[0.8], ["80 %"]]
+        ),
     )
     extents = Map(
         Quantity(),
         at_most=50,
-        metadata=describe("By reaction; one left out is zero."),
+        metadata=describe("By reaction; one left out is zero.", examples=[{"r1": "30 kmol/h"}]),
     )
     outlet = fields.Nested(OutletConditionsSchema)
     hold = Choice(
         "volume",
         "pressure",
-        metadata=describe("What a batch of gas keeps; default volume. Batches only."),
+        metadata=describe("What a batch of gas keeps. Batches only.", default="volume"),
     )
 
 
@@ -74,18 +79,13 @@ def read(document: Any) -> tuple[TableProblem, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    request = load(_REQUEST, document)
-    reader = RequestReader.of(request)
-    reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
-    problem, per_key = _read_problem(request, reader, reactions)
-    edge = reader.finish(request.get("report_in"))
-    assert problem is not None
+    (problem, per_key), edge = read_request(_REQUEST, document, ("feed",), _read_problem)
     return problem, edge.per_mole_of_key() if per_key else edge
 
 
 def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
-) -> tuple[TableProblem | None, bool]:
+) -> tuple[TableProblem, bool] | None:
     """Return the problem, and whether it is kept per mole of key fed."""
     key = read_key(request, reader, reactions)
     feed = read_feed(request["feed"], "/feed", reader, reactions, key)
@@ -96,7 +96,7 @@ def _read_problem(
     if "hold" in request and not batch:
         reader.fault("field-not-used", "/hold", "a flow holds nothing; state 'amounts', a batch")
     if feed is None or inlet is None:
-        return None, False
+        return None
     problem = TableProblem(
         reactions=reactions,
         key=key,
@@ -150,6 +150,15 @@ def _read_asked(request: Json, reader: RequestReader, reactions: ReactionSet, ba
         extent = reader.quantity(raw, pointer, ("extents", name), dimension)
         if extent is not None and name in ids:
             row[ids.index(name)] = extent.value
+    left_out = [id_ for id_ in ids if id_ not in extents]
+    if left_out:
+        reader.assumed.append(
+            Note(
+                "extents-left-out",
+                f"no extent is stated of {', '.join(left_out)}: taken as zero",
+                subject=("extents",),
+            )
+        )
     return {"extents": row[None, :]}
 
 

@@ -27,9 +27,9 @@ from schemas.feed import (
 )
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Tagged, Text, describe
 from schemas.rates import read_rate
-from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reactions
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.results import NumberSchema, OpenSchema, TableSchema, envelope, number
-from schemas.shape import ClosedSchema, child, load
+from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
 
 
@@ -49,14 +49,25 @@ class TanksInSeriesSchema(ClosedSchema):
     """Equal ideally mixed tanks, one after the other."""
 
     kind = Choice("tanks-in-series", required=True)
-    number = Number(at_least=1, at_most=100, integer=True, required=True)
+    number = Number(
+        at_least=1,
+        at_most=100,
+        integer=True,
+        required=True,
+        metadata=describe("How many tanks, all of one volume.", examples=[3]),
+    )
 
 
 class BatchSchema(ClosedSchema):
     """A batch; a gas holds its volume or its pressure."""
 
     kind = Choice("batch", required=True)
-    hold = Choice("volume", "pressure", load_default="volume")
+    hold = Choice(
+        "volume",
+        "pressure",
+        load_default="volume",
+        metadata=describe("What a gas keeps; without meaning for a liquid."),
+    )
 
 
 REACTOR_SCHEMAS: dict[str, type[ClosedSchema]] = {
@@ -65,7 +76,7 @@ REACTOR_SCHEMAS: dict[str, type[ClosedSchema]] = {
     "tanks-in-series": TanksInSeriesSchema,
     "batch": BatchSchema,
 }
-"""One schema for each kind of :data:`core.reactors.REACTOR_KINDS`."""
+"""One schema for each kind of :data:`core.reactors.kinds.REACTOR_KINDS`."""
 
 
 class IsothermalSchema(ClosedSchema):
@@ -77,26 +88,38 @@ class IsothermalSchema(ClosedSchema):
 class ConversionTargetSchema(ClosedSchema):
     """A conversion of the key."""
 
-    conversion = Quantity(required=True)
+    conversion = Quantity(required=True, metadata=describe("Of the key.", examples=[0.8, "80 %"]))
 
 
 class SpeciesTargetSchema(ClosedSchema):
     """A flow, mole fraction, concentration or yield of a substance; exactly one of them."""
 
-    species = Text(required=True)
-    flow = Quantity()
-    mole_fraction = Quantity()
-    concentration = Quantity()
-    yield_ = Quantity(data_key="yield", metadata=describe("On key basis."))
+    species = Text(required=True, metadata=describe("The substance.", examples=["R"]))
+    flow = Quantity(
+        metadata=describe("At the outlet; of a batch its amount.", examples=["6 kmol/h"])
+    )
+    mole_fraction = Quantity(metadata=describe("At the outlet.", examples=["5 %"]))
+    concentration = Quantity(metadata=describe("At the outlet.", examples=["1.2 kmol/m3"]))
+    yield_ = Quantity(
+        data_key="yield", metadata=describe("Key turned into it over key fed.", examples=[0.7])
+    )
 
 
 class VolumeRequest(AccountSchema):
     """A feed, a reaction with its rate, a kind of reactor and a target."""
 
-    feed = fields.Nested(StreamSchema, required=True)
-    reactor = Tagged("kind", REACTOR_SCHEMAS, required=True)
+    feed = fields.Nested(
+        StreamSchema,
+        required=True,
+        metadata=describe("Into the reactor, or the charge of a batch; its flows are known."),
+    )
+    reactor = Tagged(
+        "kind", REACTOR_SCHEMAS, required=True, metadata=describe("'kind' tells which.")
+    )
     thermal = Tagged(
-        "mode", {"isothermal": IsothermalSchema}, metadata=describe("Default: isothermal.")
+        "mode",
+        {"isothermal": IsothermalSchema},
+        metadata=describe("'mode' tells which.", default={"mode": "isothermal"}),
     )
     target = OneOf(
         {
@@ -104,6 +127,7 @@ class VolumeRequest(AccountSchema):
             "otherwise": fields.Nested(ConversionTargetSchema),
         },
         required=True,
+        metadata=describe("A conversion, or exactly one quantity of a substance."),
     )
 
 
@@ -117,13 +141,7 @@ def read(document: Any) -> tuple[SizingProblem, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    request = load(_REQUEST, document)
-    reader = RequestReader.of(request)
-    reactions = read_reactions(request, reader, [(request["feed"], "/feed")])
-    problem = _read_problem(request, reader, reactions)
-    edge = reader.finish(request.get("report_in"))
-    assert problem is not None
-    return problem, edge
+    return read_request(_REQUEST, document, ("feed",), _read_problem)
 
 
 def _read_problem(

@@ -550,4 +550,4 @@ def test_the_contract_offers_every_status_that_a_calculation_answers_with():
         if op.request is None:
             continue
         offered = contract()["paths"][op.path]["post"]["responses"]
-        assert set(offered) == {"200", "400", "406", "413", "415", "422"}
+        assert set(offered) == {"200", "400", "406", "413", "415", "422", "500"}
