@@ -330,6 +330,7 @@ class _Writer:
         self.factor = float(ndtri(0.5 + self.coverage / 2))
         self.flow = words_of(self.problem.batch).flow_dimension
         self.assumed: list[Note] = []
+        self.notes: list[Note] = []
 
     def answer(self) -> Answer:
         found, results = self.found, self.results
@@ -352,8 +353,7 @@ class _Writer:
         result["reconciliation"] = self._reconciliation()
         if results.without_suspects:
             result["without_suspect"] = self._without_suspect()
-        notes: list[Note] = []
-        assumed = self.assumed
+        notes, assumed = self.notes, self.assumed
         for note in (*self.edge.read_notes, *found.notes, *results.notes):
             (assumed if note.code in ASSUMED else notes).append(note)
         for phase in sorted({stream.phase for stream in self.problem.outlet}):
@@ -455,6 +455,8 @@ class _Writer:
         )
         if not told.all():
             stream["total"] = None
+            if DISTRIBUTION not in self.notes:
+                self.notes.append(DISTRIBUTION)
         return stream
 
     def _liquid_volume(self, side: Side) -> float | None:
@@ -568,6 +570,12 @@ def _as_read(number_: Json | None) -> Json | None:
     return {k: float(f"{v:.14g}") if isinstance(v, float) else v for k, v in number_.items()}
 
 
+DISTRIBUTION = Note(
+    "distribution-not-told",
+    "the readings do not tell how a substance is shared out among the outlet streams; such a"
+    " stream has no total, and only the flows that are known",
+    subject=("outlet",),
+)
 INCONSISTENT = Note(
     "readings-inconsistent",
     "the readings contradict each other beyond their uncertainties; 'suspects' names those in"
