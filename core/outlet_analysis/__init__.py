@@ -4,6 +4,7 @@ In the order to read it:
 
 ``forms``           the one shape that every reading has, and its derivatives
 ``readings``        from metered streams to forms
+``analysis_sums``   what the fractions of an analysis add up to
 ``account``         the unknowns, and every stream in terms of them
 ``preparation``     weights, exact readings, a first guess
 ``observability``   what the readings leave open

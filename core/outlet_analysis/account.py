@@ -22,6 +22,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
+from core.outlet_analysis.analysis_sums import AnalysisSum, analysis_sums
 from core.outlet_analysis.readings import (
     FURTHER,
     PRESSURE,
@@ -97,6 +98,7 @@ class Account:
     problem : AccountProblem
     readings : Readings
     writer : ReadingWriter
+    sums : tuple of AnalysisSum
     unknowns : tuple of Unknown, length n
     of_flow, of_extent : ndarray of bool, shape (n,)
         Which unknowns are flows, and which extents.
@@ -111,6 +113,7 @@ class Account:
     problem: AccountProblem
     readings: Readings
     writer: ReadingWriter
+    sums: tuple[AnalysisSum, ...]
     unknowns: tuple[Unknown, ...]
     stream_map: FloatArray
     feed_map: FloatArray
@@ -172,7 +175,8 @@ def build_account(problem: AccountProblem) -> Account:
         problem.reactions, (*problem.feed, *problem.outlet), len(problem.feed), problem.series
     )
     reactions = independent_reactions(problem.reactions.nu) if problem.outlet else []
-    return _assemble(problem, readings, writer, reactions, released=None)
+    sums = analysis_sums(readings, writer)
+    return _assemble(problem, readings, writer, sums, reactions, released=None)
 
 
 def release_outlet(account: Account) -> Account:
@@ -184,7 +188,9 @@ def release_outlet(account: Account) -> Account:
     """
     problem = account.problem
     unmetered = frozenset(q for q, stream in enumerate(problem.outlet) if not stream.flows)
-    return _assemble(problem, account.readings, account.writer, [], released=unmetered)
+    return _assemble(
+        problem, account.readings, account.writer, account.sums, [], released=unmetered
+    )
 
 
 def _check(problem: AccountProblem) -> None:
@@ -261,6 +267,7 @@ def _assemble(
     problem: AccountProblem,
     readings: Readings,
     writer: ReadingWriter,
+    sums: tuple[AnalysisSum, ...],
     reactions: list[int],
     released: frozenset[int] | None,
 ) -> Account:
@@ -331,6 +338,7 @@ def _assemble(
         problem,
         readings,
         writer,
+        sums,
         tuple(columns.unknowns),
         stream_map,
         feed_map,

@@ -129,6 +129,8 @@ class ReadingWriter:
     bases: list[FloatArray] = field(default_factory=list)
     known: list[bool] = field(default_factory=list)
     used: set[tuple[int, int]] = field(default_factory=set)
+    analyses: dict[int, slice] = field(default_factory=dict)
+    """Places of the values of each stream's analysis among the readings."""
 
     def __post_init__(self) -> None:
         self.count = len(self.reactions.substances)
@@ -350,6 +352,8 @@ class ReadingWriter:
             cleared = self.sample_total(g, weights, total)
             powers = [(cleared, -1.0)]
             share = True
+        first = len(self.measurements)
+        self.analyses[g] = slice(first, first + len(forms))
         for component, form in zip(analysis.components, forms, strict=True):
             whole = share and all(weight <= 1 for weight in component.weights.values())
             self.add(

@@ -18,6 +18,7 @@ from scipy.special import chdtrc
 from core.arrays import FloatArray
 from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
+from core.outlet_analysis.analysis_sums import sum_faults
 from core.outlet_analysis.consistency import (
     DETECTABLE,
     Examined,
@@ -54,8 +55,9 @@ def estimate(problem: AccountProblem) -> Estimate:
     Refused
         A problem that cannot be put (see
         :func:`core.outlet_analysis.account.build_account`); for a single
-        sample also ``under-determined``, ``exact-readings-conflict`` and
-        ``not-converged``, which in a series stand in ``failed``.
+        sample also ``analysis-sum``, ``under-determined``,
+        ``exact-readings-conflict`` and ``not-converged``, which in a series
+        stand in ``failed``.
     """
     return joined(list(estimates(problem)))
 
@@ -117,6 +119,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.told[at] = moved <= TOUCHED * outcome.natural
         for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
             failed[int(at[row])] = _told_apart(account)
+    failed.update(sum_faults(account.sums, rows))
     out.blank(sorted(failed))
     result = Estimate(
         account=account,

@@ -8,11 +8,15 @@ import numpy as np
 
 from core.arrays import BoolArray
 from core.errors import Fact, Note, Readings
-from core.outlet_analysis.account import Account
+from core.outlet_analysis.account import Account, listed
+from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, percent
 from core.outlet_analysis.estimate import Estimate
 
 ILL_CONDITIONED = 1e8
 """Inflation of a variance from which on the answer is called ill-conditioned."""
+
+UNREAD = 0.03
+"""Share of a stream that no value names from which on a whole analysis is doubted."""
 
 Counted = Callable[[BoolArray], tuple[str, dict[str, Fact]]]
 
@@ -81,6 +85,7 @@ def remarks(found: Estimate) -> Iterator[Note]:
                 subject=("reconciliation",),
                 facts={"ways": ways, "shown": shown},
             )
+    yield from _sum_notes(found, counted)
     yield from _removal_notes(found, counted)
 
 
@@ -164,6 +169,58 @@ def _backwards(found: Estimate, counted: Counted) -> Iterator[Note]:
             subject=("reactions", name),
             facts={"reaction": name, **facts},
         )
+
+
+def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """Analyses that do not quite add up, or do so though substances are missing from them."""
+    account = found.account
+    names = account.problem.reactions.names
+    rows = slice(found.first, found.first + len(found.z))
+    good = np.isfinite(found.chi_square)
+    for of in account.sums:
+        subject = of.analysis.subject
+        off = of.off[rows]
+        wide = good & of.complete & (np.abs(off) > np.maximum(REMARKED, COVERAGE * of.u[rows]))
+        if wide.any():
+            words, facts = counted(wide)
+            yield Note(
+                "analysis-sum",
+                "the fractions of the feed sum to {sum} and nothing makes up the rest; name a"
+                " balance or the missing substances, correct the values, or say that they are"
+                " normalised" + words,
+                severity="warning",
+                subject=subject,
+                facts={"sum": percent(1 + float(off[wide][0])), **facts},
+            )
+        marks = good & of.whole[rows]
+        unread = [
+            i for i in np.flatnonzero(account.writer.own[of.stream]).tolist() if i not in of.names
+        ]
+        if not unread or not marks.any():
+            continue
+        weights = account.writer.masses if of.analysis.basis == "mass" else account.writer.ones
+        flows = found.stream_flows(of.stream)
+        seen = account.writer.sampled(of.stream, weights * account.writer.own[of.stream])
+        share = flows[:, unread] * weights[unread] / (np.nan_to_num(flows) @ seen)[:, None]
+        marks &= share.sum(axis=1) > UNREAD
+        if marks.any():
+            words, facts = counted(marks)
+            most = np.where(marks[:, None], share, 0.0).max(axis=0)
+            named = [names[i] for i, part in zip(unread, most, strict=True) if part > UNREAD / 10]
+            yield Note(
+                "sample-may-be-dried",
+                "the analysis makes up a whole sample, and yet {share} of the stream is"
+                " {substances}, which it does not name: was the sample dried, or {substances}"
+                " removed before the analyser? Say so under 'removed'; if not, give a value or"
+                " leave the analysis open" + words,
+                severity="warning",
+                subject=subject,
+                facts={
+                    "share": percent(float(share.sum(axis=1)[marks].max())),
+                    "substances": listed(named),
+                    **facts,
+                },
+            )
 
 
 def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:

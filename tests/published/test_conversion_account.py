@@ -117,7 +117,7 @@ def test_dry_analysis_of_a_wet_gas() -> None:
         analysis=analysis_of(
             reactions,
             "feed",
-            {"N2": (0.5, 0.1), "CO2": (0.5, 0.1), "O2": (0.5, 0.1)},
+            {"N2": (0.6, 0.1), "CO2": (0.2, 0.1), "O2": (0.2, 0.1)},
             removed=["H2O"],
         ),
     )

@@ -29,23 +29,27 @@ SHIFT = reactions_of({"shift": "CO + H2O <=> CO2 + H2"}, list(SHIFT_FEED))
 
 
 @pytest.mark.parametrize(
-    ("feed", "outlet"),
+    ("feed", "outlet", "basis"),
     [
         # An analysis, and nothing that flows.
-        ({n: (0.0, 0.01 * f) for n, f in SHIFT_FEED.items()}, SHIFT_OUTLET),
-        # A fraction of a thousand million: a unit gone wrong.
+        ({n: (0.0, 0.01 * f) for n, f in SHIFT_FEED.items()}, SHIFT_OUTLET, "mole"),
+        # A thousand million moles in a cubic metre of gas: a unit gone wrong.
         (
             {n: (f, 0.01 * f) for n, f in SHIFT_FEED.items()},
-            {**SHIFT_OUTLET, "CO": (1e9, 1.0)},
+            {"CO": (1e9, 1.0), "CO2": (5.0, 0.1)},
+            "concentration",
         ),
     ],
 )
-def test_no_account_comes_near_the_readings(feed: Any, outlet: Any) -> None:
+def test_no_account_comes_near_the_readings(feed: Any, outlet: Any, basis: str) -> None:
+    analysis = analysis_of(SHIFT, "outlet", outlet, removed=["H2O"], basis=basis)
     problem = account(
         SHIFT,
         "CO",
         stream_of(SHIFT, "feed", flows=feed),
-        stream_of(SHIFT, "outlet", analysis=analysis_of(SHIFT, "outlet", outlet, removed=["H2O"])),
+        stream_of(
+            SHIFT, "outlet", analysis=analysis, temperature=(600.0, 1.0), pressure=(1e5, 1e2)
+        ),
     )
     with pytest.raises(Refused) as caught:
         estimate(problem)

@@ -1,0 +1,147 @@
+"""What the fractions of an analysis add up to, and whether they can be right.
+
+Ranges, not numbers: a limit may stand for anything up to, or from, its value,
+a lump of several substances for anything between their weights, a missing
+reading for anything.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Fault
+from core.outlet_analysis.readings import ABOVE, BELOW, Readings, ReadingWriter
+from core.streams.metered import Analysis
+
+FRACTIONS = ("mole", "mass", "volume")
+
+LEAST, MOST = 0.95, 1.05
+"""Sums outside this range are refused: what is missing, or too much, is not an error of reading."""
+REMARKED = 0.005
+"""Distance of a feed's sum from 1 that is remarked where its uncertainty does not explain it."""
+WHOLE = 0.01
+"""Within so much of 1 an analysis is taken to be meant as whole."""
+COVERAGE = 3.0
+
+
+@dataclass(frozen=True, eq=False)
+class AnalysisSum:
+    """The sum of an analysis' fractions over N samples.
+
+    Attributes
+    ----------
+    stream : int
+    analysis : Analysis
+    names : frozenset of int
+        Substances that it names: those with a value, the balance, those removed.
+    least, most : ndarray, shape (N,)
+        What the sum is at least and at most, without the balance.
+    u : ndarray, shape (N,)
+        Standard uncertainty of the values together.
+    of_feed : bool
+    complete : bool
+        Of a feed: everything that it may hold has a value or was removed.
+    """
+
+    stream: int
+    analysis: Analysis
+    names: frozenset[int]
+    least: FloatArray
+    most: FloatArray
+    u: FloatArray
+    of_feed: bool
+    complete: bool
+
+    @property
+    def whole(self) -> BoolArray:
+        """Whether the values, or the balance, make up a whole sample, shape (N,)."""
+        if self.analysis.balance is not None:
+            return np.ones(len(self.least), dtype=bool)
+        return np.asarray((self.least >= 1 - WHOLE) & (self.most <= 1 + WHOLE))
+
+    @property
+    def off(self) -> FloatArray:
+        """Distance of the sum from 1 at the least, with its sign, shape (N,)."""
+        above, below = np.maximum(self.least - 1, 0), np.minimum(self.most - 1, 0)
+        return np.where(above > 0, above, below)
+
+
+def analysis_sums(readings: Readings, writer: ReadingWriter) -> tuple[AnalysisSum, ...]:
+    """Return the sums of the analyses that are fractions of a sample, each value once."""
+    return tuple(_sums(readings, writer))
+
+
+def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
+    for g, place in writer.analyses.items():
+        stream, of_feed = writer.streams[g], g < writer.feeds
+        analysis = stream.analysis
+        assert analysis is not None
+        if analysis.normalised or analysis.basis not in FRACTIONS:
+            continue
+        weights = [component.weights for component in analysis.components]
+        read = [i for each in weights for i in each]
+        if len(set(read)) < len(read):
+            continue
+        bound, value = readings.bound[:, place], readings.measured[:, place]
+        there = np.isfinite(value)
+        least = value / np.array([max(each.values()) for each in weights])
+        most = value / np.array([min(each.values()) for each in weights])
+        least = np.where(there & (bound != BELOW), least, 0.0)
+        most = np.where(there & (bound != ABOVE), most, np.inf)
+        u = np.where(there & (bound == 0), readings.u[:, place], 0.0)
+        left = _left_of_removed(analysis, least, weights, writer.masses)
+        names = {*read, *(removal.substance for removal in analysis.removed)}
+        if analysis.balance is not None:
+            names.add(analysis.balance)
+        may_hold = set(np.flatnonzero(writer.own[g]).tolist()).intersection(stream.present or ())
+        yield AnalysisSum(
+            g,
+            analysis,
+            frozenset(names),
+            least.sum(axis=1) + left,
+            most.sum(axis=1) + left,
+            np.sqrt((u * u).sum(axis=1)),
+            of_feed,
+            of_feed and analysis.balance is None and names.issuperset(may_hold),
+        )
+
+
+def _left_of_removed(
+    analysis: Analysis, value: FloatArray, weights: list[Mapping[int, float]], masses: FloatArray
+) -> FloatArray | float:
+    """Fraction of the analysed sample that removed substances still are, shape (N,)."""
+    residual = sum(removal.residual for removal in analysis.removed)
+    if not residual or analysis.basis != "mass":
+        return residual
+    per_mass = np.array([1 / np.mean([masses[i] for i in each]) for each in weights])
+    left = sum(removal.residual * masses[removal.substance] for removal in analysis.removed)
+    return np.asarray(value @ per_mass * left / (1 - residual))
+
+
+def sum_faults(sums: Iterable[AnalysisSum], rows: slice) -> dict[int, Fault]:
+    """Return, by sample of ``rows``, the analysis whose fractions are far from adding up."""
+    found: dict[int, Fault] = {}
+    for of in sums:
+        least, most = of.least[rows], of.most[rows]
+        # A feed with a balance that is less than nothing shows as a negative flow.
+        wrong = (least > MOST) & (of.complete or not of.of_feed) | (most < LEAST) & of.complete
+        for row in np.flatnonzero(wrong).tolist():
+            total = least[row] if least[row] > MOST else most[row]
+            found[row] = Fault(
+                "analysis-sum",
+                of.analysis.subject,
+                "found fractions that sum to {sum}; those of a feed are to make up 95 to 105 % of"
+                " the sample and those of an outlet no more than that. Name a balance or the"
+                " missing substances, correct the values, or say that they are normalised",
+                {"sum": percent(total)},
+            )
+    return found
+
+
+def percent(share: float) -> str:
+    """Return a share in words."""
+    return f"{100 * share:.5g} %"
