@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Literal
 
 from marshmallow import fields
@@ -124,7 +125,11 @@ class StreamReader:
 
     def __post_init__(self) -> None:
         self.readings = Readings(self.reader)
-        self.analyses = AnalysisReader(self.readings, self.reactions)
+
+    @cached_property
+    def analyses(self) -> AnalysisReader:
+        """Reads the analyses of the streams."""
+        return AnalysisReader(self.readings, self.reactions)
 
     def metered(
         self, document: Json, pointer: str, subject: Subject, side: Side
@@ -203,8 +208,11 @@ class StreamReader:
             analysis = self.analyses.analysis(document["analysis"], place, about, phase)
         elif "concentrations" in document:
             analysis = self.analyses.concentrations(document, pointer, subject, phase)
+        flows = tuple(self._flows(document, pointer, subject, phase, form))
         present: frozenset[int] | None
-        if side == "feed":
+        if form in ("flows", "amounts"):
+            present = frozenset([flow.substance for flow in flows if flow.substance is not None])
+        elif side == "feed":
             present = self._fed(document, analysis, elsewhere)
         else:
             present = self._leaving(document, analysis)
@@ -212,7 +220,7 @@ class StreamReader:
             phase=phase,
             present=present,
             subject=subject,
-            flows=tuple(self._flows(document, pointer, subject, phase, form)),
+            flows=flows,
             analysis=analysis,
             temperature=temperature,
             pressure=pressure,
