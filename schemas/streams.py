@@ -142,6 +142,7 @@ class StreamReader:
         if "streams" not in document:
             stream = self._one(document, pointer, subject, document.get("phase"), side, frozenset())
             return () if stream is None else (stream,)
+        self.reader.at(subject, pointer)
         for name in STREAM_CONTENT:
             if name in document:
                 self.reader.fault(

@@ -331,6 +331,31 @@ case(
     "/outlet/analysis/values/CO2",
 )
 case(
+    "analysis-sum",
+    conversion(
+        feed={
+            "phase": "gas",
+            "flow": "100 kmol/h",
+            "analysis": {"basis": "mole", "values": {"CO": "24 %", "H2O": "40 %"}},
+        },
+        outlet__analysis__values={"CO": "5.39 %", "CO2": "25.71 %"},
+    ),
+    "/feed/analysis",
+)
+case(
+    "nowhere-to-leave",
+    conversion(
+        outlet={
+            "phase": "gas",
+            "streams": [
+                {"id": "gas", "flows": {"CO": "31 kmol/h", "CO2": "149 kmol/h"}},
+                {"id": "drum", "flows": {"H2O": "271 kmol/h"}},
+            ],
+        }
+    ),
+    "/outlet",
+)
+case(
     "not-in-account",
     conversion(outlet__analysis__removed=["H20"]),
     "/outlet/analysis/removed/0",
