@@ -440,6 +440,8 @@ class _Writer:
             if conditions.phase == "gas" and temperature is not None and pressure is not None:
                 total = float(flows[inside].sum())
                 volume = total * z * GAS_CONSTANT * temperature / pressure
+            if volume is None:
+                self._note(NO_CONCENTRATIONS)
         stream = write_stream(
             self.edge,
             names,
@@ -455,9 +457,12 @@ class _Writer:
         )
         if not told.all():
             stream["total"] = None
-            if DISTRIBUTION not in self.notes:
-                self.notes.append(DISTRIBUTION)
+            self._note(DISTRIBUTION)
         return stream
+
+    def _note(self, note: Note) -> None:
+        if note not in self.notes:
+            self.notes.append(note)
 
     def _liquid_volume(self, side: Side) -> float | None:
         """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
@@ -570,6 +575,11 @@ def _as_read(number_: Json | None) -> Json | None:
     return {k: float(f"{v:.14g}") if isinstance(v, float) else v for k, v in number_.items()}
 
 
+NO_CONCENTRATIONS = Note(
+    "concentrations-not-known",
+    "a stream has concentrations where its volume is known: state temperature and pressure of a"
+    " gas, volumetric flow, density or concentrations of a liquid",
+)
 DISTRIBUTION = Note(
     "distribution-not-told",
     "the readings do not tell how a substance is shared out among the outlet streams; such a"
