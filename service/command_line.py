@@ -7,6 +7,12 @@ import os
 # One BLAS thread a process: more of them, in several workers, get in each other's way and
 # cost a factor of ten and more. NumPy reads this when it is imported, so it comes first.
 os.environ["OPENBLAS_NUM_THREADS"] = os.environ["OMP_NUM_THREADS"] = "1"
+# What the web server would read from the environment beside its settings, some of it on import.
+os.environ.pop("FORWARDED_ALLOW_IPS", None)
+os.environ.pop("PORT", None)
+os.environ.pop("SCRIPT_NAME", None)
+os.environ.pop("SENDFILE", None)
+os.environ.pop("WEB_CONCURRENCY", None)
 
 import functools
 import itertools
@@ -49,7 +55,7 @@ def main() -> None:
 )
 @_option(
     "--log-level",
-    type=click.Choice(["debug", "info", "warning", "error", "critical"]),
+    type=click.Choice(["debug", "info", "warning", "error", "critical"], case_sensitive=False),
     default="info",
     help="Least severe messages to log; the line for each request is always written.",
 )
@@ -70,11 +76,16 @@ def main() -> None:
 def serve(**chosen: Any) -> None:
     """Serve until SIGTERM or Ctrl-C; SIGHUP replaces the processes one by one.
 
-    The log goes to standard output, one JSON object a line. Before SIGTERM,
-    take the service out of the load balancer.
+    The log goes to standard output, one JSON object a line; requests to paste
+    go to standard error. Before SIGTERM, take the service out of the load
+    balancer. Ctrl-C drops what is under way.
     """
-    logs.configure(chosen["log_level"])
-    server.Application(server.Settings(**chosen), _greet).run()
+    settings = server.Settings(**chosen)
+    fault = server.address_fault(settings.host, settings.port)
+    if fault:
+        raise click.ClickException(fault)
+    logs.configure(settings.log_level)
+    server.Application(settings, _greet).run()
 
 
 def banner(address: str) -> str:

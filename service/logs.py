@@ -1,7 +1,8 @@
 """The log: one JSON object a line on standard output, and nothing else there.
 
-Requests, the web server's own messages, warnings and tracebacks take the same
-way out. A line never holds a word of a request's body, path or query.
+Requests, the web server's own messages, warnings and failures take the same
+way out. A line never holds a word of a request's body, path, query or header,
+but for its X-Request-ID and its method.
 """
 
 from __future__ import annotations
@@ -10,15 +11,20 @@ import logging
 import os
 import random
 import re
+import sysconfig
 import time
-from collections.abc import Iterable, MutableMapping
+import traceback
+from collections.abc import Iterable, Iterator, MutableMapping
 from datetime import UTC, datetime
 from functools import lru_cache
+from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import flask
 import orjson
 import structlog
+
+from service import __version__
 
 if TYPE_CHECKING:
     from _typeshed.wsgi import StartResponse, WSGIApplication, WSGIEnvironment
@@ -47,9 +53,7 @@ class _Output:
     debug = info = warning = error = critical = _write
 
 
-def _render(logger: object, level: str, fields: MutableMapping[str, Any]) -> bytes:
-    if "exc_info" in fields:
-        structlog.processors.format_exc_info(logger, level, fields)
+def _render(_logger: object, level: str, fields: MutableMapping[str, Any]) -> bytes:
     line = {"time": _now(), "level": level, "event": fields.pop("event"), **fields}
     return orjson.dumps(line, default=str, option=orjson.OPT_APPEND_NEWLINE)
 
@@ -74,6 +78,45 @@ def logger(level: int = logging.INFO) -> Any:
     ).bind()
 
 
+_ROOTS = sorted(
+    {
+        str(Path(__file__).resolve().parents[1]),
+        *(sysconfig.get_path(name) for name in ("purelib", "platlib", "stdlib")),
+    },
+    key=len,
+    reverse=True,
+)
+"""Where packages stand: one may stand within another."""
+
+_MOST_FRAMES = 40
+
+
+def _failures(error: BaseException | None) -> Iterator[dict[str, Any]]:
+    """Yield the class and the last frames of an exception, then of what it came from.
+
+    Its message stays out: it may quote the request.
+    """
+    seen: set[int] = set()
+    while error is not None and id(error) not in seen:
+        seen.add(id(error))
+        frames = [
+            f"{_relative(frame.f_code.co_filename)}:{line} {frame.f_code.co_name}"
+            for frame, line in traceback.walk_tb(error.__traceback__)
+        ]
+        kind = type(error)
+        name = kind.__qualname__
+        yield {
+            "class": name if kind.__module__ == "builtins" else f"{kind.__module__}.{name}",
+            "frames": frames[-_MOST_FRAMES:],
+        }
+        error = error.__cause__ or (None if error.__suppress_context__ else error.__context__)
+
+
+def _relative(file: str) -> str:
+    root = next((root for root in _ROOTS if file.startswith(root + os.sep)), None)
+    return os.path.relpath(file, root) if root else os.path.basename(file)
+
+
 class _Handler(logging.Handler):
     """Sends the records of the standard library's loggers the same way."""
 
@@ -87,8 +130,8 @@ class _Handler(logging.Handler):
             if flask.has_request_context():
                 line = flask.request.environ.get(_LINE, {})
                 extra["request_id"] = line.get("request_id")
-            if record.exc_info:
-                extra["exc_info"] = record.exc_info
+            if record.exc_info and record.exc_info[1]:
+                extra["exception"] = list(_failures(record.exc_info[1]))
             self._logger.log(
                 record.levelno,
                 record.getMessage(),
@@ -121,6 +164,18 @@ def annotate(**fields: str) -> None:
     flask.request.environ.setdefault(_LINE, {}).update(fields)
 
 
+_requests = logger()
+_routine, _failed = _requests.info, _requests.error
+
+
+def write_request(began: int, line: dict[str, Any]) -> None:
+    """Write the line of a request that was taken up at ``began``, ns of the performance counter."""
+    line["milliseconds"] = round((time.perf_counter_ns() - began) / 1e6, 3)
+    line["pid"] = os.getpid()
+    line["release"] = __version__
+    (_failed if line["status"] == 500 else _routine)("request", **line)
+
+
 class _RequestLog:
     """WSGI in, WSGI out, and a line about what went through.
 
@@ -129,8 +184,6 @@ class _RequestLog:
 
     def __init__(self, application: WSGIApplication) -> None:
         self._application = application
-        log = logger()
-        self._routine, self._failed = log.info, log.error
 
     def __call__(self, environ: WSGIEnvironment, start_response: StartResponse) -> Iterable[bytes]:
         began = time.perf_counter_ns()
@@ -142,7 +195,7 @@ class _RequestLog:
             "method": environ["REQUEST_METHOD"],
             "route": None,
             "status": 500,
-            "milliseconds": 0.0,
+            "bytes": 0,
         }
 
         def start(status: str, headers: list[tuple[str, str]], *exc_info: Any) -> Any:
@@ -151,14 +204,17 @@ class _RequestLog:
             if request is not None and request.url_rule is not None:
                 line["route"] = request.url_rule.rule
             line["status"] = int(status[:3])
+            for name, value in headers:
+                if name == "Content-Length":
+                    line["bytes"] = int(value)
+                    break
             headers.append(("X-Request-ID", request_id))
             return start_response(status, headers, *exc_info)
 
         try:
             return self._application(environ, start)
         finally:
-            line["milliseconds"] = round((time.perf_counter_ns() - began) / 1e6, 3)
-            (self._routine if line["status"] < 500 else self._failed)("request", **line)
+            write_request(began, line)
 
 
 def log_requests(app: flask.Flask) -> None:

@@ -7,11 +7,15 @@ one BLAS thread in each.
 from __future__ import annotations
 
 import contextlib
+import errno
+import logging
 import math
 import os
 import socket
 import struct
 import sys
+import threading
+import time
 from collections.abc import Callable
 from dataclasses import dataclass
 from http import HTTPStatus
@@ -22,6 +26,7 @@ import flask
 from gunicorn import glogging, util
 from gunicorn.app.base import BaseApplication
 from gunicorn.http import errors, wsgi
+from gunicorn.http.body import ChunkedReader, LengthReader
 from gunicorn.workers.gthread import ThreadWorker
 from werkzeug.exceptions import ClientDisconnected
 
@@ -57,6 +62,28 @@ def cores(quota: Path = Path("/sys/fs/cgroup/cpu.max")) -> int:
     return allowed if limit == "max" else min(allowed, math.ceil(int(limit) / int(period)))
 
 
+def address_fault(host: str, port: int) -> str:
+    """Return why the server could not listen there and how to mend it; nothing where it can."""
+    if "GUNICORN_FD" in os.environ or "LISTEN_FDS" in os.environ:
+        return ""  # it is handed a socket that listens already
+    another_host = "choose another with --host or MOLWRIGHT_HOST"
+    another_port = "choose another with --port or MOLWRIGHT_PORT"
+    with socket.socket(socket.AF_INET6 if ":" in host else socket.AF_INET) as probe:
+        probe.setsockopt(socket.SOL_SOCKET, socket.SO_REUSEADDR, 1)
+        try:
+            # Of an empty host the kernel would make every address there is.
+            probe.bind((host or " ", port))
+        except (OSError, UnicodeError) as error:
+            match getattr(error, "errno", None):
+                case errno.EADDRINUSE:
+                    return f"port {port} is taken; {another_port}"
+                case errno.EACCES:
+                    return f"this user may not listen on port {port}; {another_port}"
+                case _:
+                    return f"host {host[:80]!r} is no address of this machine; {another_host}"
+    return ""
+
+
 def gunicorn_settings(settings: Settings) -> dict[str, Any]:
     """Return the whole of the server's configuration: no file and no variable adds to it."""
     host = f"[{settings.host}]" if ":" in settings.host else settings.host
@@ -80,7 +107,11 @@ def gunicorn_settings(settings: Settings) -> dict[str, Any]:
         "worker_tmp_dir": memory if os.access(memory, os.W_OK) else None,
         # The socket would be made under $HOME, which a container may not have.
         "control_socket_disable": True,
+        # Nothing is believed of what a request says about the way it came.
+        "forwarded_allow_ips": "",
+        "forwarder_headers": "",
         "proc_name": "molwright",
+        "worker_exit": _leave,
         "logger_class": _Logger,
         "loglevel": settings.log_level,
         "errorlog": None,  # _Logger hands everything on
@@ -126,7 +157,7 @@ class Application(BaseApplication):  # type: ignore[misc]
 
 
 def _warm_up(app: flask.Flask) -> None:
-    """Compute every packaged example once, before the workers part.
+    """Compute every packaged example that is answered once, before the workers part.
 
     What is imported or made on first use is then there, and shared: no request
     waits for it, and a release that cannot compute does not start.
@@ -134,6 +165,8 @@ def _warm_up(app: flask.Flask) -> None:
     from schemas.examples import EXAMPLES
 
     for example in EXAMPLES:
+        if example.status != 200:
+            continue  # shows a refusal
         path = f"/v1/{example.operation}"
         with app.test_request_context(path, method="POST", json=example.request):
             app.dispatch_request()
@@ -145,6 +178,8 @@ class _Logger(glogging.Logger):  # type: ignore[misc]
     def setup(self, cfg: Any) -> None:
         super().setup(cfg)
         self.error_log.propagate = True
+        # Below that it tells paths, and what it read of a request that broke off.
+        self.error_log.setLevel(max(self.loglevel, logging.INFO))
 
     def exception(self, msg: str, *args: Any, **kwargs: Any) -> None:
         if isinstance(sys.exception(), BlockingIOError):  # see _SILENCE
@@ -154,13 +189,23 @@ class _Logger(glogging.Logger):  # type: ignore[misc]
 
 
 class _Response(wsgi.Response):  # type: ignore[misc]
-    """An answer that does not say which server made it."""
+    """An answer that does not say which server made it, and says when it is the last."""
+
+    def should_close(self) -> bool:
+        # What was left unread of a body stands where the next request would begin.
+        return _left_unread(self.req.body.reader) or bool(super().should_close())
 
     def default_headers(self) -> list[str]:
         return [line for line in super().default_headers() if not line.startswith("Server:")]
 
 
 wsgi.Response = _Response  # gunicorn has no setting for it
+
+
+def _left_unread(reader: Any) -> bool:
+    if isinstance(reader, LengthReader):
+        return bool(reader.length)
+    return isinstance(reader, ChunkedReader) and reader.parser is not None
 
 
 _FAILED = ("internal-error", INTERNAL)
@@ -206,6 +251,13 @@ def _fault(exc: BaseException) -> tuple[int, str, str]:
 _SILENCE = struct.pack("ll", 30, 0)
 """How long a client may say or take nothing, as the kernel wants it: s, us."""
 
+_LINGER = 2.0  # s
+_DRAINED = 64 * 2**20  # bytes
+"""How long, and for how much, a client that is still sending is listened to after its answer.
+
+Closed at once, its connection would be reset, and the answer lost on the way.
+"""
+
 
 class _Worker(ThreadWorker):  # type: ignore[misc]
     """gunicorn's threaded worker, with its manners mended.
@@ -215,25 +267,28 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
     * A client holds its own thread and nothing else: not the loop that serves
       all while its connection is closed, not for ever when it falls silent; and
       a worker without a free thread leaves new connections to the others.
+    * An interrupt drops whatever is under way, at once, wherever it strikes.
     * On a stop it takes in the connections that wait in the queue and closes the
       queue at once: whoever comes later is refused, and may safely go elsewhere,
       where a reset would leave open what became of the request.
     """
 
-    _requests = logs.logger()
     sockets: list[Any]
+
+    def __init__(self, *args: Any, **kwargs: Any) -> None:
+        super().__init__(*args, **kwargs)
+        self._taken_up = threading.local()
 
     def handle_error(self, req: Any, client: Any, addr: Any, exc: BaseException) -> None:  # noqa: ARG002
         status, code, detail = _fault(exc)
-        if status == 500:
-            self.log.error("request failed outside the application", exc_info=exc)
         request_id = logs.new_request_id()
-        self._requests.info(
-            "request", request_id=request_id, method=None, route=None, status=status, code=code
-        )
+        if status == 500:
+            self.log.error("request %s failed outside the application", request_id, exc_info=exc)
         # Which path was meant is not known; "/" stands for the service.
         with self.wsgi.test_request_context():
             body = problem(status, code, detail).get_data()
+        line = {"method": None, "route": None, "status": status, "bytes": len(body), "code": code}
+        logs.write_request(self._taken_up.at, {"request_id": request_id, **line})
         head = (
             f"HTTP/1.1 {status} {HTTPStatus(status).phrase}\r\n"
             "Connection: close\r\n"
@@ -245,14 +300,24 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
             util.write_nonblock(client, head.encode() + body)
 
     def handle(self, conn: Any) -> Any:
+        self._taken_up.at = time.perf_counter_ns()
         conn.sock.setsockopt(socket.SOL_SOCKET, socket.SO_RCVTIMEO, _SILENCE)
         conn.sock.setsockopt(socket.SOL_SOCKET, socket.SO_SNDTIMEO, _SILENCE)
         again = super().handle(conn)
         if again is False:
-            # gunicorn would wait in its loop, up to 2 s, for the client to close its side.
-            conn.close(graceful=True)
+            # gunicorn would wait for the client to close its side in the loop that serves all.
+            conn.sock.setblocking(True)
+            util.close_graceful(conn.sock, _LINGER, _DRAINED)
             conn.close = _already_closed
         return again
+
+    def handle_quit(self, _signal: int, _frame: Any) -> None:
+        # Not here: what the signal interrupted may hold a lock that a stop needs.
+        self.method_queue.defer(self._quit)
+
+    def _quit(self) -> None:
+        self.alive = False
+        sys.exit(0)
 
     @property
     def worker_connections(self) -> int:
@@ -275,6 +340,12 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
                     waiting = self.nr_conns > before
                 listener.close()
             self.sockets = []
+
+
+def _leave(_arbiter: Any, _worker: Any) -> None:
+    """End this worker's process: Python itself would first wait for threads that wait."""
+    reason = sys.exception()
+    os._exit(reason.code if isinstance(reason, SystemExit) and isinstance(reason.code, int) else 1)
 
 
 def _already_closed(graceful: bool = False) -> None:

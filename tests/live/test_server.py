@@ -11,6 +11,8 @@ import time
 
 import pytest
 
+from service import __version__
+
 pytestmark = pytest.mark.live
 
 PATH = "/v1/stoichiometric-table"
@@ -47,6 +49,7 @@ def test_every_request_is_a_line_of_the_log(server):
     assert list(line)[:3] == ["time", "level", "event"]
     assert re.fullmatch(r"\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{3}\+00:00", line.pop("time"))
     assert 0 < line.pop("milliseconds") < 10_000
+    assert line.pop("pid") != server.pid, "a worker answers"
     assert line == {
         "level": "info",
         "event": "request",
@@ -54,6 +57,8 @@ def test_every_request_is_a_line_of_the_log(server):
         "method": "POST",
         "route": PATH,
         "status": answer.status,
+        "bytes": len(answer.body),
+        "release": __version__,
         "code": answer.problem()["type"].removeprefix("/problems/"),
     }
 
@@ -96,6 +101,9 @@ def test_what_is_not_http_is_a_problem_too(server, data, status, code):
     assert answer.problem()["type"] == f"/problems/{code}"
     line = server.logged(answer.headers["X-Request-ID"])
     assert (line["event"], line["status"], line["code"]) == ("request", status, code)
+    assert (line["bytes"], line["release"]) == (len(answer.body), __version__)
+    assert line["milliseconds"] > 0
+    assert line["level"] == "info"
 
 
 @pytest.mark.parametrize(

@@ -1,12 +1,17 @@
 import json
 import logging
 import os
+import re
 import warnings
 
 import flask
 import pytest
 
-from service import logs
+from service import __version__, logs
+
+
+class StrangeError(Exception):
+    pass
 
 
 @pytest.fixture
@@ -20,7 +25,10 @@ def app():
 
     @made.get("/fails")
     def fails():
-        raise ValueError("a failure")
+        try:
+            int("secret of a request")
+        except ValueError as error:
+            raise StrangeError("a secret too") from error
 
     @made.get("/warns")
     def warns():
@@ -58,6 +66,7 @@ def test_a_request_is_one_line_with_its_rule_and_what_was_added(app, lines):
     assert "secret" not in str(line)
     assert line.pop("time")
     assert line.pop("milliseconds") > 0
+    assert line.pop("pid") == os.getpid()
     assert line == {
         "level": "info",
         "event": "request",
@@ -65,7 +74,9 @@ def test_a_request_is_one_line_with_its_rule_and_what_was_added(app, lines):
         "method": "GET",
         "route": "/things/<name>",
         "status": 200,
+        "bytes": len("secret"),
         "digest": "sha256:0",
+        "release": __version__,
     }
 
 
@@ -79,16 +90,35 @@ def test_ids_of_requests_without_one_differ(app):
 def test_a_failure_is_a_line_even_where_nothing_answers_it(app, lines, propagate):
     app.config["PROPAGATE_EXCEPTIONS"] = propagate
     if propagate:
-        with pytest.raises(ValueError, match="a failure"):
+        with pytest.raises(StrangeError, match="a secret"):
             app.test_client().get("/fails")
     else:
         app.test_client().get("/fails")
     *before, line = lines()
     assert (line["level"], line["status"]) == ("error", 500)
     if not propagate:
-        (traceback,) = before
-        assert "ValueError: a failure" in traceback["exception"]
-        assert traceback["request_id"] == line["request_id"]
+        (failure,) = before
+        assert "secret" not in str(failure)
+        assert failure["request_id"] == line["request_id"]
+        raised, cause = failure["exception"]
+        assert (raised["class"], cause["class"]) == (f"{__name__}.StrangeError", "ValueError")
+        assert raised["frames"][0].startswith("flask/app.py:")
+        assert re.fullmatch(r"tests/service/test_logs\.py:\d+ fails", raised["frames"][-1])
+
+
+@pytest.mark.usefixtures("configured")
+def test_a_failure_without_end_is_a_line_that_ends(lines):
+    def deeper():
+        deeper()
+
+    try:
+        deeper()
+    except RecursionError:
+        logging.getLogger("deep").exception("too deep")
+    (line,) = lines()
+    (failure,) = line["exception"]
+    assert failure["class"] == "RecursionError"
+    assert len(failure["frames"]) == 40
 
 
 @pytest.mark.usefixtures("configured")
