@@ -14,10 +14,8 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault
-from core.outlet_analysis.readings import ABOVE, BELOW, Readings, ReadingWriter
+from core.outlet_analysis.readings import ABOVE, BELOW, FRACTIONS, Readings, ReadingWriter
 from core.streams.metered import Analysis
-
-FRACTIONS = ("mole", "mass", "volume")
 
 LEAST, MOST = 0.95, 1.05
 """Sums outside this range are refused: what is missing, or too much, is not an error of reading."""
@@ -93,7 +91,7 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
         least = np.where(there & (bound != BELOW), least, 0.0)
         most = np.where(there & (bound != ABOVE), most, np.inf)
         u = np.where(there & (bound == 0), readings.u[:, place], 0.0)
-        left = _left_of_removed(analysis, least, weights, writer.masses)
+        left = _left_of_removed(analysis, least, most, weights, writer.masses)
         names = {*read, *(removal.substance for removal in analysis.removed)}
         if analysis.balance is not None:
             names.add(analysis.balance)
@@ -102,8 +100,8 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
             g,
             analysis,
             frozenset(names),
-            least.sum(axis=1) + left,
-            most.sum(axis=1) + left,
+            least.sum(axis=1) + left[0],
+            most.sum(axis=1) + left[1],
             np.sqrt((u * u).sum(axis=1)),
             of_feed,
             of_feed and analysis.balance is None and names.issuperset(may_hold),
@@ -111,15 +109,21 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
 
 
 def _left_of_removed(
-    analysis: Analysis, value: FloatArray, weights: list[Mapping[int, float]], masses: FloatArray
-) -> FloatArray | float:
-    """Fraction of the analysed sample that removed substances still are, shape (N,)."""
+    analysis: Analysis,
+    least: FloatArray,
+    most: FloatArray,
+    weights: list[Mapping[int, float]],
+    masses: FloatArray,
+) -> tuple[FloatArray | float, FloatArray | float]:
+    """At least and at most, the fraction of the sample that removed substances still are, (N,)."""
     residual = sum(removal.residual for removal in analysis.removed)
     if not residual or analysis.basis != "mass":
-        return residual
-    per_mass = np.array([1 / np.mean([masses[i] for i in each]) for each in weights])
+        return residual, residual
     left = sum(removal.residual * masses[removal.substance] for removal in analysis.removed)
-    return np.asarray(value @ per_mass * left / (1 - residual))
+    per_mole = left / (1 - residual)
+    heavy = np.array([max(masses[i] for i in each) for each in weights])
+    light = np.array([min(masses[i] for i in each) for each in weights])
+    return (least / heavy).sum(axis=1) * per_mole, (most / light).sum(axis=1) * per_mole
 
 
 def sum_faults(sums: Iterable[AnalysisSum], rows: slice) -> dict[int, Fault]:

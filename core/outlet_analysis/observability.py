@@ -9,6 +9,7 @@ its linearisation, C. M. Crowe, Chem. Eng. Sci. 44 (1989) 2909-2913.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass
 from itertools import combinations
 
@@ -17,22 +18,46 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fact, Fault, Readings, Subject
 from core.outlet_analysis.account import Account, listed
-from core.outlet_analysis.readings import FURTHER, VOLUME, ReadingWriter, describe_stream
-from core.streams.metered import FlowReading, Measurement
+from core.outlet_analysis.forms import Forms
+from core.outlet_analysis.readings import (
+    FRACTIONS,
+    FURTHER,
+    VOLUME,
+    ReadingWriter,
+    describe_stream,
+)
+from core.streams.metered import Analysis, Basis, FlowKind, FlowReading, Measurement
 
 OPEN = 1e-7
 """Singular value, relative to the largest, below which a direction is open."""
+CANCELLED = 1e-9
+"""Slope of a reading, relative to that of what it counts, which is rounding alone."""
 TOUCHED = 1e-6
 """Part of an open direction that a quantity must take to be open itself."""
+USEFUL = 1e-3
+"""Part of its slope along what is open that a further reading must have to be worth making."""
 LARGEST_SET = 3
 FEW = 5
 
+BLANK = Measurement(1.0, 1.0, ())
+FLOW_WORDS: dict[FlowKind, str] = {
+    "amount": "flow",
+    "mass": "mass flow",
+    "volume": "volumetric flow",
+}
 
-def equilibrated(slopes: FloatArray, active: BoolArray, natural: FloatArray) -> FloatArray:
-    """Slopes (N, m, n) of the readings that are there, in natural sizes, rows of unit length."""
-    rows = slopes * natural[:, None, :]
+
+def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatArray) -> FloatArray:
+    """Slopes (N, m, n) of the readings that are there, in natural sizes, rows of unit length.
+
+    A row is nothing where its parts cancel: a fraction that is the same
+    whatever the unknowns are tells nothing.
+    """
+    found = forms.at(z)
+    rows = forms.jacobian(found) * natural[:, None, :]
     length = np.sqrt((rows * rows).sum(axis=-1))
-    usable = active & (length > 0)
+    counted = np.sqrt((natural * natural) @ (forms.numerators * forms.numerators).T)
+    usable = active & (length > CANCELLED * np.abs(found.product) * counted) & (length > 0)
     scaled: FloatArray = rows * np.where(usable, 1 / np.where(usable, length, 1.0), 0.0)[..., None]
     return scaled
 
@@ -61,19 +86,40 @@ def touched(forms: FloatArray, natural: FloatArray, directions: FloatArray) -> B
     return np.asarray(moved > TOUCHED * np.where(length > 0, length, 1.0))
 
 
+_Claim = tuple[int, str, str]
+
+
 @dataclass(frozen=True, eq=False)
 class _Candidate:
-    """A reading that could be made: its words and its slope in natural sizes (n,)."""
+    """A reading that could be stated.
+
+    Attributes
+    ----------
+    words : str
+    slope : ndarray, shape (n,)
+        In natural sizes.
+    flow : bool
+        It tells how much flows.
+    claims : frozenset of (stream, place, what)
+        What it makes of the form of its stream; of each place there is one.
+    """
 
     words: str
     slope: FloatArray
+    flow: bool
+    claims: frozenset[_Claim]
+
+
+def _can_be_stated(chosen: Iterable[_Candidate]) -> bool:
+    claims = {claim for candidate in chosen for claim in candidate.claims}
+    return len({claim[:2] for claim in claims}) == len(claims)
 
 
 def under_determined(
     account: Account,
     z: FloatArray,
     natural: FloatArray,
-    directions: FloatArray,
+    scaled: FloatArray,
     missing: tuple[Subject, ...],
 ) -> Fault:
     """Say what the readings leave open, and the fewest further readings that would settle it.
@@ -83,13 +129,15 @@ def under_determined(
     account : Account
     z, natural : ndarray, shape (n,)
         Where the readings are met, and the sizes of the unknowns there.
-    directions : ndarray, shape (n, d)
-        As :func:`open_directions` gives them.
+    scaled : ndarray, shape (m + 1, n)
+        As :func:`equilibrated` gives it: the readings, and the key fed where
+        no reading tells how much flows.
     missing : tuple of Subject
         Readings of the account that are missing from this sample.
     """
     names = account.problem.reactions.names
     key = account.problem.key
+    directions = open_directions(scaled)
     words: list[str] = []
     fed, left = account.feed_map, account.outlet_map
     reported = [fed]
@@ -107,8 +155,17 @@ def under_determined(
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
             words.append(f"the flow of {listed(found)} {where}")
-    target = np.concatenate(reported) * natural @ directions
-    sets = _settling(_candidates(account, z, natural), target, directions)
+    subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
+    if not words:
+        return Fault(
+            "under-determined",
+            subject,
+            "the readings of this sample do not tell the unknowns apart within double precision:"
+            " a reading that should decide between them is next to nothing here; add one that"
+            " carries information, such as a flow or the fraction of a main substance",
+        )
+    target = np.concatenate(reported) * natural
+    sets = _settling(_candidates(account, z, natural), target, scaled)
     if sets:
         options = "; or ".join(" together with ".join(chosen) for chosen in sets)
         cure = "One more reading would settle it" if len(sets[0]) == 1 else "What would settle it"
@@ -120,7 +177,6 @@ def under_determined(
     if missing:
         detail += ". Missing here: {missing}"
         facts["missing"] = Readings(missing)
-    subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
     return Fault("under-determined", subject, detail, facts)
 
 
@@ -132,80 +188,150 @@ def _conversion_slope(fed: FloatArray, left: FloatArray, z: FloatArray) -> Float
 
 
 def _candidates(account: Account, z: FloatArray, natural: FloatArray) -> list[_Candidate]:
-    problem, streams = account.problem, account.streams
-    names = problem.reactions.names
-    writer = ReadingWriter(problem.reactions, streams, len(problem.feed))
-    words: list[str] = []
-    blank = Measurement(1.0, 1.0, ())
-
-    def note(text: str) -> None:
-        words.extend([text] * (len(writer.measurements) - len(words)))
-
-    count = len(names)
-    for g, stream in enumerate(streams):
-        where = describe_stream(streams, len(problem.feed), g)
-        analysis = stream.analysis
-        carried = np.any(account.stream_map[g * count : (g + 1) * count] != 0, axis=1)
-        removed = {r.substance for r in analysis.removed} if analysis else set()
-        read = {
-            next(iter(component.weights))
-            for component in (analysis.components if analysis else ())
-            if len(component.weights) == 1
-        }
-        for i in np.flatnonzero(carried).tolist():
-            if i in removed or i in read:
-                continue
-            total = writer.sample_total(g, writer.ones, "amount")
-            form = writer.flows(g, writer.sampled(g, np.eye(count)[i]))
-            writer.add(g, blank, form, [(total, -1.0)])
-            note(f"the fraction of {names[i]} in {'the analysis of ' if analysis else ''}{where}")
-        writer.flow_reading(g, FlowReading("amount", blank))
-        note(f"the total flow of {where}")
-        if analysis is not None and analysis.removed:
-            writer.flow_reading(g, FlowReading("amount", blank, as_analysed=True))
-            note(f"the flow of {where} as analysed")
-        for i in np.flatnonzero(carried).tolist():
-            if g < len(problem.feed) or i in removed:
-                writer.flow_reading(g, FlowReading("amount", blank, substance=i))
-                note(f"the flow of {names[i]} in {where}")
-        place = len(streams) * count + g * FURTHER + VOLUME
-        if account.stream_map[place].any():
-            volume = writer.further_base(g, VOLUME)
-            if stream.phase == "liquid":
-                writer.flow_reading(g, FlowReading("volume", blank))
-                note(f"the density or the volumetric flow of {where}")
-            else:
-                moles = writer.flows(g, writer.own[g])
-                writer.add(g, blank, moles, [(volume, -1.0)])
-                note(f"the temperature and pressure of {where}")
-    forms = writer.forms().through(account.stream_map)
-    found = forms.at(z[None])
-    slopes = forms.jacobian(found)[0] * natural
-    length = np.linalg.norm(slopes, axis=1)
+    """Readings that could be stated beside those that are."""
+    forms = _Further(account)
+    for g in range(len(account.streams)):
+        forms.of_stream(g)
+    written = forms.writer.forms().through(account.stream_map)
+    scaled = equilibrated(written, z[None], np.ones((1, len(forms.words)), bool), natural[None])[0]
+    told = scaled.any(axis=1)
     return [
-        _Candidate(text, slope / size)
-        for text, slope, size in zip(words, slopes, length, strict=True)
-        if size > 0 and np.isfinite(size)
+        _Candidate(words, slope, flow, claims)
+        for (words, claims), slope, flow, tells in zip(
+            forms.words, scaled, forms.writer.flow, told, strict=True
+        )
+        if tells
     ]
 
 
+class _Further:
+    """Writes the readings that could be stated of a stream in the form that it has."""
+
+    def __init__(self, account: Account) -> None:
+        self.account = account
+        problem = account.problem
+        self.streams, self.feeds = account.streams, len(problem.feed)
+        self.names = problem.reactions.names
+        self.writer = ReadingWriter(problem.reactions, self.streams, self.feeds)
+        self.words: list[tuple[str, frozenset[_Claim]]] = []
+
+    def note(self, words: str, *claims: _Claim) -> None:
+        """Say what the reading written last is."""
+        self.words.append((words, frozenset(claims)))
+
+    def of_stream(self, g: int) -> None:
+        """Write what could be read of stream ``g``.
+
+        A stream states the flows of its substances, or an analysis with or
+        without its total flow.
+        """
+        stream, count = self.streams[g], len(self.names)
+        where = describe_stream(self.streams, self.feeds, g)
+        rows = self.account.stream_map[g * count : (g + 1) * count]
+        carried = np.flatnonzero(np.any(rows != 0, axis=1)).tolist()
+        by_substance = {f.substance for f in stream.flows if f.substance is not None}
+        if stream.analysis is not None or not by_substance:
+            self._analysed(g, where, carried)
+        if stream.analysis is None:
+            for i in carried:
+                if i not in by_substance:
+                    self._flow(g, FlowReading("amount", BLANK, substance=i))
+                    self.note(f"the flow of {self.names[i]} in {where}", (g, "form", "flows"))
+        elif g < self.feeds:
+            for removal in stream.analysis.removed:
+                if removal.residual == 0 and removal.substance in carried:
+                    self._flow(g, FlowReading("amount", BLANK, substance=removal.substance))
+                    self.note(
+                        f"the flow of {self.names[removal.substance]}, as a feed stream of its own"
+                    )
+        self._volume(g, where)
+
+    def _flow(self, g: int, reading: FlowReading) -> None:
+        self.writer.flow_reading(g, reading)
+
+    def _analysed(self, g: int, where: str, carried: list[int]) -> None:
+        stream, writer = self.streams[g], self.writer
+        basis: Basis = "mass" if stream.phase == "liquid" else "mole"
+        analysis = stream.analysis or Analysis(basis, (), stream.subject)
+        known = {next(iter(c.weights)) for c in analysis.components if len(c.weights) == 1}
+        known |= {removal.substance for removal in analysis.removed}
+        constant, powers, _ = writer.divisor(g, analysis)
+        share = "fraction" if analysis.basis in FRACTIONS else "concentration"
+        place = "an analysis of" if stream.analysis is None else "the analysis of"
+        for i in carried:
+            # What is not of the stream's phase is read as part of it only once it has a value.
+            if i not in known and writer.own[g][i]:
+                form = writer.counted(g, analysis, {i: 1.0})
+                writer.add(g, BLANK, form, powers, constant=constant)
+                self.note(
+                    f"the {share} of {self.names[i]} in {place} {where}", (g, "form", "analysis")
+                )
+        if any(reading.substance is None for reading in stream.flows):
+            return
+        kind: FlowKind = "mass" if analysis.basis == "mass" else "amount"
+        if stream.phase == "liquid" and analysis.basis not in FRACTIONS:
+            kind = "volume"
+        self._flow(g, FlowReading(kind, BLANK))
+        analysed: _Claim = (g, "form", "analysis")
+        self.note(f"the total {FLOW_WORDS[kind]} of {where}", analysed, (g, "flow", "whole"))
+        if analysis.removed and kind != "volume":
+            self._flow(g, FlowReading(kind, BLANK, as_analysed=True))
+            self.note(f"the {FLOW_WORDS[kind]} of {where} as analysed", (g, "flow", "as-analysed"))
+
+    def _volume(self, g: int, where: str) -> None:
+        stream, writer = self.streams[g], self.writer
+        place = len(self.streams) * len(self.names) + g * FURTHER + VOLUME
+        if not self.account.stream_map[place].any():
+            return
+        if stream.phase == "liquid":
+            # Of a liquid that keeps its density a density of its own would make two.
+            shared = any(
+                self.account.unknowns[column].stream != g
+                for column in np.flatnonzero(self.account.stream_map[place]).tolist()
+            )
+            if stream.density is None and not shared:
+                writer.density(g, BLANK)
+                self.note(f"the density of {where}")
+            if stream.analysis is None:
+                self._flow(g, FlowReading("volume", BLANK))
+                self.note(f"the volumetric flow of {where}", (g, "form", "flows"))
+        elif not writer.has_conditions(g):
+            volume = writer.further_base(g, VOLUME)
+            writer.add(g, BLANK, writer.flows(g, writer.own[g]), [(volume, -1.0)])
+            self.note(f"the temperature and pressure of {where}")
+
+
 def _settling(
-    candidates: list[_Candidate], target: FloatArray, directions: FloatArray
+    candidates: list[_Candidate], target: FloatArray, scaled: FloatArray
 ) -> list[tuple[str, ...]]:
-    """Smallest sets of candidates after which the target no longer changes, a few of them."""
-    seen = np.array([candidate.slope @ directions for candidate in candidates]).reshape(
-        len(candidates), directions.shape[1]
-    )
+    """Smallest sets of candidates after which the target no longer changes, a few of them.
+
+    The first flow that is read takes the place of the key fed, the last row of
+    ``scaled``: with it the account is no longer kept per mole of key.
+    """
+    directions = open_directions(scaled[:-1])
+    per_key = scaled[-1:] @ directions
+    slopes = np.array([candidate.slope for candidate in candidates])
+    seen = slopes.reshape(len(candidates), -1) @ directions
+    wanted = target @ directions
     strength = np.linalg.norm(seen, axis=1)
     # Those that see most of what is open come first; alike ones keep their order.
     order = np.argsort(-np.round(strength, 2), kind="stable")
-    useful = [int(k) for k in order if strength[k] > TOUCHED]
-    need = np.linalg.norm(target)
+    useful = [int(k) for k in order if strength[k] > USEFUL]
+    need = np.linalg.norm(wanted)
+
+    def left_open(rows: list[int]) -> FloatArray:
+        """Orthonormal basis of what stays open with some candidates read."""
+        of = seen[rows]
+        if not any(candidates[k].flow for k in rows):
+            of = np.concatenate([of, per_key])
+        _, values, right = np.linalg.svd(of, full_matrices=True)
+        return np.asarray(right[int((values > USEFUL).sum()) :].T)
 
     def settles(rows: list[int]) -> bool:
-        _, values, right = np.linalg.svd(seen[rows], full_matrices=True)
-        rank = int((values > TOUCHED).sum())
-        return bool(np.linalg.norm(target @ right[rank:].T) <= 10 * TOUCHED * need)
+        if not _can_be_stated(candidates[k] for k in rows):
+            return False
+        return bool(np.linalg.norm(wanted @ left_open(rows)) <= 10 * TOUCHED * need)
 
     found: list[tuple[str, ...]] = []
     for size in range(1, LARGEST_SET + 1):
@@ -219,11 +345,13 @@ def _settling(
         if found:
             return found
     chosen_rows: list[int] = []
-    while useful and len(chosen_rows) < directions.shape[1]:
-        _, values, right = np.linalg.svd(seen[chosen_rows], full_matrices=True)
-        left = right[int((values > TOUCHED).sum()) :].T if chosen_rows else np.eye(len(right))
-        best = max(useful, key=lambda k: float(np.linalg.norm(seen[k] @ left)))
-        if np.linalg.norm(seen[best] @ left) <= TOUCHED:
+    while len(chosen_rows) < directions.shape[1]:
+        left = left_open(chosen_rows)
+        useful = [k for k in useful if _can_be_stated(candidates[j] for j in (*chosen_rows, k))]
+        best = max(useful, key=lambda k: float(np.linalg.norm(seen[k] @ left)), default=-1)
+        if best < 0:
+            break
+        if np.linalg.norm(seen[best] @ left) <= USEFUL:
             break
         chosen_rows.append(best)
         if settles(chosen_rows):

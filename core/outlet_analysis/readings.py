@@ -28,6 +28,9 @@ BELOW: Final = -1
 ABOVE: Final = 1
 """Kinds of limit, sample by sample; 0 is a reading proper."""
 
+FRACTIONS = ("mole", "mass", "volume")
+"""Bases whose values are parts of a whole."""
+
 VOLUME, TEMPERATURE, PRESSURE, SCALE = range(4)
 """Places of a stream's further quantities in the stream space."""
 FURTHER = 4
@@ -333,38 +336,41 @@ class ReadingWriter:
                 "found an analysis of a liquid by volume, and the volumes of its substances are"
                 " not known; state it by mole, by mass or as concentrations",
             )
-        by_mass = analysis.basis in ("mass", "mass-concentration")
-        weights = self.masses if by_mass else self.ones
-        forms = [
-            self.flows(g, self.sampled(g, self.component(component.weights, weights)))
-            for component in analysis.components
-        ]
-        total = "mass" if by_mass else "amount"
-        share = False
-        constant = 1.0
-        if analysis.normalised:
-            # The total of the peaks stands for whatever they were scaled by.
-            cleared = self.base((g, "peaks"), np.sum(forms, axis=0))
-            powers = [(cleared, -1.0), (self.further_base(g, SCALE), 1.0)]
-        elif analysis.basis in ("concentration", "mass-concentration"):
-            constant, powers, cleared = self.per_volume(g, analysis)
-        else:
-            cleared = self.sample_total(g, weights, total)
-            powers = [(cleared, -1.0)]
-            share = True
+        constant, powers, cleared = self.divisor(g, analysis)
+        share = analysis.basis in FRACTIONS and not analysis.normalised
         first = len(self.measurements)
-        self.analyses[g] = slice(first, first + len(forms))
-        for component, form in zip(analysis.components, forms, strict=True):
-            whole = share and all(weight <= 1 for weight in component.weights.values())
+        self.analyses[g] = slice(first, first + len(analysis.components))
+        for component in analysis.components:
             self.add(
                 g,
                 component.measurement,
-                form,
+                self.counted(g, analysis, component.weights),
                 powers,
                 constant=constant,
                 cleared=cleared,
-                share=whole,
+                share=share and all(weight <= 1 for weight in component.weights.values()),
             )
+
+    def counted(self, g: int, analysis: Analysis, shares: Mapping[int, float]) -> FloatArray:
+        """Return the form that a value of an analysis counts."""
+        return self.flows(g, self.sampled(g, self.component(shares, self.weights(analysis))))
+
+    def weights(self, analysis: Analysis) -> FloatArray:
+        """Weights of the substances in an analysis: by amount, or by mass."""
+        return self.masses if analysis.basis in ("mass", "mass-concentration") else self.ones
+
+    def divisor(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+        """Constant, powers and cleared base that every value of an analysis is counted against."""
+        if analysis.normalised:
+            # The total of the peaks stands for whatever they were scaled by.
+            peaks = [self.counted(g, analysis, c.weights) for c in analysis.components]
+            cleared = self.base((g, "peaks"), np.sum(peaks, axis=0))
+            return 1.0, [(cleared, -1.0), (self.further_base(g, SCALE), 1.0)], cleared
+        if analysis.basis not in FRACTIONS:
+            return self.per_volume(g, analysis)
+        total = "mass" if analysis.basis == "mass" else "amount"
+        cleared = self.sample_total(g, self.weights(analysis), total)
+        return 1.0, [(cleared, -1.0)], cleared
 
     def component(self, shares: Mapping[int, float], weights: FloatArray) -> FloatArray:
         """Weights of the substances under one value of an analysis."""

@@ -33,7 +33,7 @@ from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
-from core.outlet_analysis.solving import Fitted, fit_block
+from core.outlet_analysis.solving import Fitted, fit_block, open_at
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
 
@@ -118,7 +118,10 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             moved = np.linalg.norm(outcome.directions, axis=1)
             out.told[at] = moved <= TOUCHED * outcome.natural
         for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
-            failed[int(at[row])] = _told_apart(account)
+            one = slice(row, row + 1)
+            failed[int(at[row])] = open_at(
+                block, int(at[row]), outcome.z[one], outcome.natural[one]
+            )
     failed.update(sum_faults(account.sums, rows))
     out.blank(sorted(failed))
     result = Estimate(
@@ -201,16 +204,6 @@ class _Results:
         for name, array in vars(self).items():
             if rows:
                 array[rows] = 0 if name in ("freedom", "sets", "told") else np.nan
-
-
-def _told_apart(account: Account) -> Fault:
-    return Fault(
-        "under-determined",
-        ("outlet",) if account.problem.outlet else ("feed",),
-        "the readings of this sample do not tell the unknowns apart within double precision:"
-        " a reading that should decide between them is next to nothing here; add one that"
-        " carries information, such as a flow or the fraction of a main substance",
-    )
 
 
 def _single(block: Estimate) -> Estimate:

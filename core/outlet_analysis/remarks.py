@@ -198,7 +198,7 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
         ]
         if not unread or not marks.any():
             continue
-        weights = account.writer.masses if of.analysis.basis == "mass" else account.writer.ones
+        weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)
         seen = account.writer.sampled(of.stream, weights * account.writer.own[of.stream])
         share = flows[:, unread] * weights[unread] / (np.nan_to_num(flows) @ seen)[:, None]

@@ -83,10 +83,8 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
             np.packbits(active, axis=1), axis=0, return_index=True, return_inverse=True
         )
         label = label.reshape(-1)
-    forms = group.fit.forms.samples(_marks(first, len(active)))
-    slopes = forms.jacobian(forms.at(group.start[_marks(first, len(active))]))
-    order = np.argsort(np.argsort(first))
-    scaled = equilibrated(slopes[order], active[first], group.natural[first])
+    forms = group.fit.forms.samples(first)
+    scaled = equilibrated(forms, group.start[first], active[first], group.natural[first])
     is_open = open_patterns(scaled)
     determined = ~is_open[label]
     nothing = np.empty((len(block.account.unknowns), 0))
@@ -101,24 +99,28 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         natural = group.natural[sample]
         directions = open_directions(scaled[pattern])
         if reported is not None and touched(reported, natural, directions).any():
-            subjects = block.account.readings.subjects
-            missing = tuple(
-                s for s, there in zip(subjects, active[sample], strict=False) if not there
-            )
-            fault = under_determined(
-                block.account, group.start[sample], natural, directions, missing
-            )
-            yield group.rows[mine], fault
+            yield group.rows[mine], _left_open(block, group, sample, directions)
             continue
         held = directions.T / natural
         fit = _holding(group.fit.samples(mine), held, group.start[mine])
         yield from _solved(block, group, mine, fit, directions * natural[:, None])
 
 
-def _marks(places: IntArray, count: int) -> BoolArray:
-    marks = np.zeros(count, dtype=bool)
-    marks[places] = True
-    return marks
+def _left_open(block: Block, group: Group, sample: int, directions: FloatArray) -> Fault:
+    """Say what a sample of a group leaves open, looked at where its readings are met."""
+    one = slice(sample, sample + 1)
+    fit, start, natural = group.fit.samples(one), group.start[one], group.natural[one]
+    held = least_squares(_holding(fit, directions.T / natural, start), start, natural)
+    return open_at(block, group.rows[sample], held.z if held.converged[0] else start, natural)
+
+
+def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault:
+    """Say what sample ``row`` of a block leaves open; ``z`` and ``natural`` are (1, n)."""
+    active = block.active[row]
+    scaled = equilibrated(block.forms.samples(slice(row, row + 1)), z, active[None], natural)[0]
+    subjects = block.account.readings.subjects
+    missing = tuple(s for s, there in zip(subjects, active, strict=False) if not there)
+    return under_determined(block.account, z[0], natural[0], scaled, missing)
 
 
 def _holding(fit: Fit, held: FloatArray, z: FloatArray) -> Fit:
