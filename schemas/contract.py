@@ -103,11 +103,12 @@ OPERATIONS = (
         VolumeAnswer,
     ),
     Operation("contract", "GET", "/v1/openapi.json", "this contract"),
+    Operation("problems", "GET", "/problems", "the codes of problems and of notes in answers"),
     Operation(
         "problem",
         "GET",
         "/problems/{code}",
-        "what a problem code means",
+        "what the code of a problem or a note means",
         (JSON, HTML),
         parameters=("code",),
     ),
@@ -220,11 +221,16 @@ def _described(op: Operation) -> Json:
 UNVARIED = ("contract", "health", "ready")
 """Operations that answer the same to everybody."""
 
-REQUEST_ID = {
-    "X-Request-ID": {
-        "description": "The request's own, or the one it was given.",
-        "schema": {"type": "string"},
-    }
+
+def _header(description: str) -> Json:
+    return {"description": description, "schema": {"type": "string"}}
+
+
+REQUEST_ID = {"X-Request-ID": _header("The request's own, or the one it was given.")}
+ENTITY_TAG = {"ETag": _header("Of this contract: sent in If-None-Match, it saves the document.")}
+CSV_PROVENANCE = {
+    "Molwright-Request-Digest": _header("With CSV: the digest that the JSON answer holds."),
+    "Molwright-Release": _header("With CSV: the release that answered."),
 }
 
 
@@ -239,9 +245,14 @@ def _responses(op: Operation) -> Json:
                 for example in EXAMPLES
                 if example.operation == op.name and example.status == 200
             }
-    responses: Json = {
-        "200": {"description": op.summary, "headers": REQUEST_ID, "content": content}
-    }
+    headers = REQUEST_ID
+    if CSV in op.media_types:
+        headers = headers | CSV_PROVENANCE
+    if op.name == "contract":
+        headers = headers | ENTITY_TAG
+    responses: Json = {"200": {"description": op.summary, "headers": headers, "content": content}}
+    if op.name == "contract":
+        responses["304"] = {"description": "as If-None-Match says", "headers": headers}
     for status, meaning in sorted(_refusals(op).items()):
         problem: Json = {"schema": ProblemSchema}
         examples = {
@@ -260,11 +271,10 @@ def _responses(op: Operation) -> Json:
 
 
 def _refusals(op: Operation) -> dict[str, str]:
-    refusals = {"500": "a fault of the service"}
+    refusals = {"500": "a fault of the service", "400": "a query parameter that is not known"}
     if op.name in ("health", "ready"):
         return refusals
     refusals["406"] = "no form that the client accepts"
-    refusals["400"] = "a query parameter that is not known"
     if op.request is not None:
         refusals |= {
             "400": "the document breaks this contract, or a query parameter is not known",

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import codecs
 import json
 import re
 from collections.abc import Iterator
@@ -31,26 +32,36 @@ def read_json(request: Request) -> tuple[Any, bytes]:
     Raises
     ------
     HttpFault
-        The body is not declared as JSON (415) or is too large (413).
+        The body is not declared as JSON in UTF-8 (415) or is too large (413).
     ShapeError
         It is not JSON, nests too deep, or names a member twice.
     """
-    if _media_type(request.environ.get("CONTENT_TYPE", "")) != JSON:
+    environ = request.environ
+    if not _declares_json(environ.get("CONTENT_TYPE", "")):
         found = request.headers.get("Content-Type")
         said = "no Content-Type" if found is None else f"Content-Type: {found[:80]}"
         raise HttpFault(
             415,
             "unsupported-media-type",
-            f"found {said}; send the header 'Content-Type: {JSON}'",
+            f"found {said}; send JSON in UTF-8, with the header 'Content-Type: {JSON}'",
             header="Content-Type",
+        )
+    coding = environ.get("HTTP_CONTENT_ENCODING", "")
+    if coding and coding.lower() != "identity":
+        raise HttpFault(
+            415,
+            "unsupported-media-type",
+            f"found Content-Encoding: {coding[:80]}; send the body as it is, without that header",
+            header="Content-Encoding",
         )
     body = _body(request)
     return parse_json(body), body
 
 
 @lru_cache(maxsize=64)  # nearly every client sends the same one
-def _media_type(content_type: str) -> str:
-    return parse_options_header(content_type)[0].lower()
+def _declares_json(content_type: str) -> bool:
+    media, options = parse_options_header(content_type)
+    return media.lower() == JSON and options.get("charset", "utf-8").lower() in ("utf-8", "utf8")
 
 
 def _body(request: Request) -> bytes:
@@ -67,7 +78,8 @@ def _body(request: Request) -> bytes:
         raise HttpFault(
             413,
             "body-too-large",
-            f"the body is larger than {limit} bytes, the most that this service reads",
+            f"the body is larger than {limit} bytes, the most that this service reads; send less"
+            " at a time, or raise --max-body",
             header="Content-Length",
         ) from None
     return body
@@ -99,11 +111,7 @@ def parse_json(body: bytes) -> Any:
     try:
         document = orjson.loads(body)
     except orjson.JSONDecodeError as error:
-        where = f"line {error.lineno} column {error.colno}"
-        found = "an empty body" if not body.strip() else f"{error.msg} at {where}"
-        raise ShapeError(
-            (LocatedFault("not-json", f"found {found}; a JSON document is needed (RFC 8259)", ""),)
-        ) from None
+        raise ShapeError((LocatedFault("not-json", _why_not_json(body, error), ""),)) from None
     depth = _depth(document) if body.count(b"{") + body.count(b"[") > MAX_DEPTH else 0
     if depth > MAX_DEPTH:
         text = f"found a document nested {depth} deep; at most {MAX_DEPTH} is allowed"
@@ -111,6 +119,14 @@ def parse_json(body: bytes) -> Any:
     if not _plainly_without_repeats(body, document) and _members(document) != _names(body):
         raise ShapeError(tuple(_duplicates(body)))
     return document
+
+
+def _why_not_json(body: bytes, error: orjson.JSONDecodeError) -> str:
+    if body.startswith((codecs.BOM_UTF8, codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE)):
+        return "found a byte order mark; send the JSON document in UTF-8, without such a mark"
+    where = f"line {error.lineno} column {error.colno}"
+    found = f"{error.msg} at {where}" if body.strip() else "an empty body"
+    return f"found {found}; a JSON document is needed (RFC 8259)"
 
 
 def _plainly_without_repeats(body: bytes, document: Any) -> bool:

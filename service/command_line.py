@@ -103,7 +103,12 @@ def _greet(address: str) -> None:
 
 @main.command()
 @click.option("--check", "act", flag_value="check", help="Fail if it is not what the code makes.")
-@click.option("--write", "act", flag_value="write", help="Replace it by what the code makes.")
+@click.option(
+    "--write",
+    "act",
+    flag_value="write",
+    help="Replace it, and the answers of its examples, by what the code makes; in a source tree.",
+)
 def contract(act: str | None) -> None:
     """Print the published contract, an OpenAPI 3.1 document."""
     from schemas.contract import PUBLISHED, openapi_document, published_text, render
@@ -111,10 +116,10 @@ def contract(act: str | None) -> None:
     if act is None:
         click.echo(published_text(), nl=False)
         return
-    made = render(openapi_document())
     if act == "write":
-        Path(str(PUBLISHED)).write_bytes(made)
+        _write_contract(Path(str(PUBLISHED)))
         return
+    made = render(openapi_document())
     packaged = published_text()
     if made != packaged:
         pairs = itertools.zip_longest(packaged.splitlines(), made.splitlines(), fillvalue=b"(end)")
@@ -125,3 +130,19 @@ def contract(act: str | None) -> None:
             f"  made       {now.decode().strip()}\n"
             "If the change is meant, run 'molwright contract --write' from the source tree."
         )
+
+
+def _write_contract(published: Path) -> None:
+    from schemas.contract import openapi_document, render
+    from service.replay import write_answers
+
+    if not published.parents[2].joinpath("pyproject.toml").exists():
+        raise click.ClickException(
+            "this is an installed release, whose contract stands; write one in a source tree, with"
+            " 'python -m service contract --write'"
+        )
+    try:
+        write_answers()
+    except RuntimeError as error:
+        raise click.ClickException(str(error)) from None
+    published.write_bytes(render(openapi_document()))

@@ -38,7 +38,11 @@ def calculation(
             logs.annotate(digest=name)
             answered = answer(document)
             if media == CSV and answered.table is not None:
-                return _respond(to_csv(answered.table()).encode(), f"{CSV}; charset=utf-8")
+                response = _respond(to_csv(answered.table()).encode(), f"{CSV}; charset=utf-8")
+                # What the provenance of a JSON answer holds.
+                response.headers["Molwright-Request-Digest"] = name
+                response.headers["Molwright-Release"] = __version__
+                return response
             return json_response(answered.document(__version__, name, of), pretty=pretty)
 
         blueprint.add_url_rule(
@@ -85,10 +89,35 @@ def negotiate(*offered: str) -> str:
 @lru_cache(maxsize=256)  # a client sends the same header with every request
 def _best(accept: str, offered: tuple[str, ...]) -> str | None:
     accepted = parse_accept_header(accept, MIMEAccept)
-    return accepted.best_match(offered) if accepted.provided else offered[0]
+    if not accepted.provided:
+        return offered[0]
+    # Each form is offered in one version and one character set: no parameter chooses among them.
+    plain = MIMEAccept([(media.partition(";")[0].rstrip(), q) for media, q in accepted])
+    return plain.best_match(offered)
 
 
-def pretty_asked(*also: str) -> bool:
+def refuse_parameters(*known: str) -> None:
+    """Refuse query parameters other than those ``known``.
+
+    Raises
+    ------
+    HttpFault
+        400, for a parameter that the route does not know.
+    """
+    if not request.query_string:
+        return
+    allowed = f"allowed: {', '.join(known)}" if known else "this route takes none"
+    for name in request.args:
+        if name not in known:
+            raise HttpFault(
+                400,
+                "unknown-parameter",
+                f"no query parameter {name[:80]!r} is known; {allowed}",
+                parameter=name[:80],
+            )
+
+
+def pretty_asked() -> bool:
     """Return whether ``?pretty=1`` was asked for; other parameters are refused.
 
     Raises
@@ -98,15 +127,7 @@ def pretty_asked(*also: str) -> bool:
     """
     if not request.query_string:
         return False
-    for name in request.args:
-        if name != "pretty" and name not in also:
-            raise HttpFault(
-                400,
-                "unknown-parameter",
-                f"no query parameter {name[:80]!r} is known; allowed: "
-                + ", ".join(("pretty", *also)),
-                parameter=name[:80],
-            )
+    refuse_parameters("pretty")
     pretty = request.args.getlist("pretty")
     if any(value not in ("0", "1") for value in pretty) or len(pretty) > 1:
         raise HttpFault(

@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+import hashlib
 import html
+import re
+from functools import cache
+from typing import Any
 
 from flask import Blueprint, Response, request
 
-from core.problems import CATALOGUE
+from core.problems import CATALOGUE, NOTES, Entry
 from schemas.contract import OPERATIONS, published_text
 from schemas.examples import paste
 from service import __version__
-from service.endpoint import HTML, JSON, json_response, negotiate, pretty_asked
+from service.endpoint import HTML, JSON, json_response, negotiate, pretty_asked, refuse_parameters
 from service.problem_details import HttpFault
 from service.statuses import STATUSES
 
@@ -21,6 +25,7 @@ blueprint = Blueprint("information", __name__)
 def index() -> Response:
     """List the routes, and one request to paste."""
     negotiate(JSON)
+    pretty = pretty_asked()
     return json_response(
         {
             "service": "Molwright",
@@ -29,51 +34,109 @@ def index() -> Response:
             "routes": [
                 {"method": op.method, "path": op.path, "answers": op.summary} for op in OPERATIONS
             ],
-            "try": paste(request.host_url.rstrip("/"), most=1),
+            "try": paste(f"http://{_host()}", most=1),
             "cautions": "Results are advisory: screening calculations, not to be wired to safety"
             " functions. Follow local codes and licensed practice.",
         },
-        pretty=pretty_asked(),
+        pretty=pretty,
     )
+
+
+_HOST = re.compile(r"[A-Za-z0-9.:\[\]-]{1,255}")
+
+
+def _host() -> str:
+    """Return what the client calls this service, if a shell may be told so."""
+    environ = request.environ
+    said: str = environ.get("HTTP_HOST", "")
+    return said if _HOST.fullmatch(said) else f"127.0.0.1:{environ['SERVER_PORT']}"
 
 
 @blueprint.get("/v1/openapi.json", provide_automatic_options=False)
 def contract() -> Response:
     """Return the OpenAPI document, as published with this release."""
     negotiate(JSON)
-    pretty_asked()
-    return Response(published_text(), 200, content_type=JSON)
+    refuse_parameters()
+    tag = _contract_tag()
+    if request.if_none_match.contains_weak(tag):
+        response = Response(status=304)
+    else:
+        response = Response(published_text(), 200, content_type=JSON)
+    response.set_etag(tag)
+    response.headers["Cache-Control"] = "no-cache"
+    return response
+
+
+@cache
+def _contract_tag() -> str:
+    return hashlib.sha256(published_text()).hexdigest()[:32]
+
+
+@blueprint.get("/problems", provide_automatic_options=False)
+def problems() -> Response:
+    """List the codes of problems, and those of notes in answers."""
+    negotiate(JSON)
+    pretty = pretty_asked()
+    return json_response(
+        {
+            "problems": [
+                {"code": code, "status": STATUSES[code], "title": entry.title}
+                for code, entry in CATALOGUE.items()
+            ],
+            "notes": [{"code": code, "title": entry.title} for code, entry in NOTES.items()],
+        },
+        pretty=pretty,
+    )
 
 
 @blueprint.get("/problems/<code>", provide_automatic_options=False)
 def explain(code: str) -> Response:
-    """Explain a problem code, as JSON or as a page."""
-    pretty = pretty_asked()
+    """Explain the code of a problem or a note, as JSON or as a page; some codes are both."""
     media = negotiate(JSON, HTML)
-    entry = CATALOGUE.get(code)
-    if entry is None:
+    pretty = pretty_asked()
+    problem, note = CATALOGUE.get(code), NOTES.get(code)
+    if problem is None and note is None:
         raise HttpFault(
             404,
             "no-such-route",
-            f"no problem is called {code[:80]!r}; a problem's 'type' says its page",
+            f"no problem or note is called {code[:80]!r}; 'GET /problems' lists them",
         )
-    status = STATUSES[code]
-    if media == JSON:
-        page = {"code": code, "status": status, "title": entry.title, "text": entry.text}
-        return json_response(page, pretty=pretty)
-    response = Response(_page(code, status, entry.title, entry.text), 200, mimetype=HTML)
+    if media == HTML:
+        return _page(code, problem, note)
+    told: dict[str, Any] = {"code": code}
+    if problem is not None:
+        told |= {"status": STATUSES[code], **problem._asdict()}
+        if note is not None:
+            told["as_note"] = note._asdict()
+    elif note is not None:
+        told |= note._asdict()
+    return json_response(told, pretty=pretty)
+
+
+def _page(code: str, problem: Entry | None, note: Entry | None) -> Response:
+    parts = []
+    if problem is not None:
+        parts.append(_part(code, problem, f"answered with HTTP status {STATUSES[code]}"))
+    if note is not None:
+        parts.append(_part(code, note, "a note in answers"))
+    response = Response(PAGE.format(code=html.escape(code), parts="\n".join(parts)), mimetype=HTML)
     response.headers["Content-Security-Policy"] = "default-src 'none'; style-src 'unsafe-inline'"
     response.headers["Vary"] = "Accept"
     return response
 
 
-def _page(code: str, status: int, title: str, text: str) -> str:
-    return f"""<!doctype html>
+def _part(code: str, entry: Entry, where: str) -> str:
+    return f"""<h1>{html.escape(entry.title)}</h1>
+<p><code>{html.escape(code)}</code>, {where}</p>
+<p>{html.escape(entry.text)}</p>"""
+
+
+PAGE = """<!doctype html>
 <html lang="en">
 <head>
 <meta charset="utf-8">
 <meta name="viewport" content="width=device-width, initial-scale=1">
-<title>{html.escape(title)} - Molwright</title>
+<title>{code} - Molwright</title>
 <style>
 body {{ font: 1rem/1.5 system-ui, sans-serif; color: #1b1f23; background: #fff;
   max-width: 42rem; margin: 3rem auto; padding: 0 1rem; }}
@@ -82,9 +145,7 @@ code {{ background: #eef1f4; padding: .1em .3em; border-radius: .2em; }}
 </head>
 <body>
 <main>
-<h1>{html.escape(title)}</h1>
-<p><code>{html.escape(code)}</code>, answered with HTTP status {status}</p>
-<p>{html.escape(text)}</p>
+{parts}
 </main>
 </body>
 </html>
@@ -94,10 +155,18 @@ code {{ background: #eef1f4; padding: .1em .3em; border-radius: .2em; }}
 @blueprint.get("/healthz", provide_automatic_options=False)
 def health() -> Response:
     """Say that the process is alive."""
-    return json_response({"status": "alive"})
+    refuse_parameters()
+    return _now({"status": "alive"})
 
 
 @blueprint.get("/readyz", provide_automatic_options=False)
 def ready() -> Response:
     """Say that the process can compute: everything it needs is loaded before it listens."""
-    return json_response({"status": "ready", "release": __version__})
+    refuse_parameters()
+    return _now({"status": "ready", "release": __version__})
+
+
+def _now(state: dict[str, str]) -> Response:
+    response = json_response(state)
+    response.headers["Cache-Control"] = "no-store"
+    return response

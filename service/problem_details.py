@@ -7,7 +7,7 @@ from typing import Any
 
 import orjson
 from flask import Flask, Response, request
-from werkzeug.exceptions import HTTPException
+from werkzeug.exceptions import BadRequest, MethodNotAllowed, NotFound
 
 from core.problems import CATALOGUE
 from schemas.shape import LocatedFault, MeaningError, RequestError, ShapeError
@@ -30,13 +30,6 @@ class HttpFault(Exception):  # noqa: N818 - a fault of the request as HTTP, not 
             self.fault = LocatedFault(code, detail, header, "header")
         elif parameter:
             self.fault = LocatedFault(code, detail, parameter, "parameter")
-
-
-HTTP_CODES = {
-    404: "no-such-route",
-    405: "method-not-allowed",
-    413: "body-too-large",
-}
 
 
 def problem(status: int, code: str, detail: str, faults: Sequence[LocatedFault] = ()) -> Response:
@@ -69,8 +62,10 @@ def refused(error: RequestError) -> Response:
     codes = {fault.code for fault in faults}
     several = "document-breaks-schema" if shape else "cannot-be-computed"
     code = codes.pop() if len(codes) == 1 else several
-    count = "" if len(faults) == 1 else f" and {len(faults) - 1} more under 'errors'"
-    return problem(400 if shape else 422, code, f"{faults[0].detail}{count}", faults)
+    detail = faults[0].detail
+    if len(faults) > 1:
+        detail = f"{detail.rstrip('.')}; and {len(faults) - 1} more under 'errors'"
+    return problem(400 if shape else 422, code, detail, faults)
 
 
 def register(app: Flask) -> None:
@@ -86,18 +81,24 @@ def register(app: Flask) -> None:
         faults = () if error.fault is None else (error.fault,)
         return problem(error.status, error.code, error.detail, faults)
 
-    @app.errorhandler(HTTPException)
-    def _(error: HTTPException) -> Response:
-        status = error.code or 500
-        code = HTTP_CODES.get(status)
-        if code is None:
-            app.logger.error("no problem document for status %s", status)
-            return problem(500, "internal-error", INTERNAL)
-        response = problem(status, code, _http_detail(status, error))
-        allowed = getattr(error, "valid_methods", None)
-        if allowed:
-            response.headers["Allow"] = ", ".join(sorted(allowed))
+    @app.errorhandler(NotFound)
+    def _(_error: NotFound) -> Response:
+        detail = f"no route {request.path[:200]!r} is known; 'GET /' lists the routes"
+        return problem(404, "no-such-route", detail)
+
+    @app.errorhandler(MethodNotAllowed)
+    def _(error: MethodNotAllowed) -> Response:
+        methods = sorted(error.valid_methods or ())
+        allowed = ", ".join(methods)
+        logs.annotate(route=_rule(app, methods[0]))
+        detail = f"found {request.method}; this route takes {allowed}"
+        response = problem(405, "method-not-allowed", detail)
+        response.headers["Allow"] = allowed
         return response
+
+    @app.errorhandler(BadRequest)
+    def _(_error: BadRequest) -> Response:
+        return problem(400, "malformed-http", MALFORMED)
 
     @app.errorhandler(Exception)
     def _(error: Exception) -> Response:
@@ -105,16 +106,20 @@ def register(app: Flask) -> None:
         return problem(500, "internal-error", INTERNAL)
 
 
+MALFORMED = (
+    "found something other than a well-formed HTTP/1.1 request (RFC 9112): its request line, its"
+    " header or the framing of its body; look at what the client, or a proxy on the way, sends."
+    " HTTPS sent to a plain HTTP port looks like this too"
+)
 INTERNAL = (
     "the service failed in a way that it should not; the same request will fail again. Report the"
     " request and the X-Request-ID header of this answer."
 )
 
 
-def _http_detail(status: int, error: HTTPException) -> str:
-    if status == 404:
-        return f"no route {request.path[:200]!r} is known; 'GET /' lists the routes"
-    if status == 405:
-        allowed = ", ".join(sorted(getattr(error, "valid_methods", None) or ()))
-        return f"found {request.method}; this route takes {allowed}"
-    return "the body is larger than this service reads"
+def _rule(app: Flask, method: str) -> str:
+    """Return the rule that the request's path matches with another method."""
+    urls = app.create_url_adapter(request)
+    assert urls is not None  # a request has one
+    rule, _ = urls.match(method=method, return_rule=True)
+    return rule.rule

@@ -28,10 +28,9 @@ from gunicorn.app.base import BaseApplication
 from gunicorn.http import errors, wsgi
 from gunicorn.http.body import ChunkedReader, LengthReader
 from gunicorn.workers.gthread import ThreadWorker
-from werkzeug.exceptions import ClientDisconnected
 
 from service import logs
-from service.problem_details import INTERNAL, PROBLEM_JSON, problem
+from service.problem_details import INTERNAL, MALFORMED, PROBLEM_JSON, problem
 from service.statuses import STATUSES
 
 REQUEST_LINE = 4094  # bytes
@@ -147,7 +146,6 @@ class Application(BaseApplication):  # type: ignore[misc]
         app = create_app(self._settings.max_body)
         # A body is read while a route runs; broken framing is the client's fault there too.
         app.register_error_handler(errors.ParseException, _refuse_body)
-        app.register_error_handler(ClientDisconnected, _refuse_body)
         _warm_up(app)
         return app
 
@@ -228,18 +226,12 @@ _FAULTS: dict[type[BaseException], tuple[str, str]] = {
         "unsupported-transfer-coding",
         "found a transfer coding other than chunked; send the body chunked or with Content-Length",
     ),
-    errors.ParseException: (
-        "malformed-http",
-        "found something other than a well-formed HTTP/1.1 request (RFC 9112): its request line, "
-        "its header or the framing of its body; look at what the client, or a proxy on the way, "
-        "sends. HTTPS sent to a plain HTTP port looks like this too",
-    ),
+    errors.ParseException: ("malformed-http", MALFORMED),
     errors.ConfigurationProblem: _FAILED,
     errors.InvalidResponseHeader: _FAILED,
     errors.InvalidResponseHeaderName: _FAILED,
 }
 """Code and detail for each exception; a class stands for its subclasses too."""
-_FAULTS[ClientDisconnected] = _FAULTS[errors.ParseException]
 
 
 def _fault(exc: BaseException) -> tuple[int, str, str]:

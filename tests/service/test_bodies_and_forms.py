@@ -1,6 +1,7 @@
 """What comes in before anything is computed, and the forms that answers take."""
 
 import csv
+import gzip
 import io
 import json
 
@@ -84,15 +85,57 @@ def test_a_body_not_declared_as_json_is_told_the_header_to_send(client, sent):
     assert "'Content-Type: application/json'" in fault["detail"]
 
 
-def test_json_with_a_charset_is_json(client):
+@pytest.mark.parametrize("charset", ["utf-8", "UTF-8", '"utf-8"', "utf8"])
+def test_json_with_its_charset_is_json(client, charset):
     body = orjson.dumps(SHIFT)
-    response = send(client, body, **{"Content-Type": "application/json; charset=utf-8"})
+    response = send(client, body, **{"Content-Type": f"application/json; charset={charset}"})
     assert response.status_code == 200
+
+
+@pytest.mark.parametrize("charset", ["utf-16", "iso-8859-1", "latin1"])
+def test_json_in_another_charset_is_refused(client, charset):
+    body = orjson.dumps(SHIFT)
+    response = send(client, body, **{"Content-Type": f"application/json; charset={charset}"})
+    fault = assert_refused(response, 415, "unsupported-media-type", "Content-Type")
+    assert charset in fault["detail"]
+    assert "UTF-8" in fault["detail"]
+
+
+@pytest.mark.parametrize("coding", ["gzip", "br", "gzip, identity"])
+def test_a_coded_body_is_refused_by_the_header_that_says_so(client, coding):
+    response = send(client, gzip.compress(orjson.dumps(SHIFT)), **{"Content-Encoding": coding})
+    fault = assert_refused(response, 415, "unsupported-media-type", "Content-Encoding")
+    assert coding in fault["detail"]
+
+
+@pytest.mark.parametrize("coding", ["", "identity", "Identity"])
+def test_a_body_that_is_said_not_to_be_coded_is_read(client, coding):
+    assert send(client, orjson.dumps(SHIFT), **{"Content-Encoding": coding}).status_code == 200
+
+
+@pytest.mark.parametrize("coding", ["utf-8-sig", "utf-16"])
+def test_a_byte_order_mark_is_named(client, coding):
+    response = send(client, json.dumps(SHIFT).encode(coding))
+    fault = assert_refused(response, 400, "not-json", "")
+    assert "UTF-8, without such a mark" in fault["detail"]
 
 
 def test_a_body_beyond_the_limit_is_refused(client, app):
     body = b" " * (app.config["MAX_CONTENT_LENGTH"] + 1)
-    assert_refused(send(client, body), 413, "body-too-large", "Content-Length")
+    fault = assert_refused(send(client, body), 413, "body-too-large", "Content-Length")
+    assert "--max-body" in fault["detail"]
+
+
+class Gone(io.BytesIO):
+    def read(self, _size=-1):
+        raise ConnectionResetError
+
+
+def test_a_client_that_goes_away_is_no_failure_of_ours(client):
+    server = {"wsgi.input": Gone(), "CONTENT_LENGTH": "9"}
+    response = client.post(TABLE, headers=JSON, environ_overrides=server)
+    assert response.status_code == 400
+    assert response.get_json()["type"] == "/problems/malformed-http"
 
 
 def test_no_accept_header_means_json_and_a_newline_at_the_end(client):
@@ -101,6 +144,33 @@ def test_no_accept_header_means_json_and_a_newline_at_the_end(client):
     assert response.get_data().endswith(b"}\n")
     assert response.headers["Vary"] == "Accept"
     assert response.headers["X-Content-Type-Options"] == "nosniff"
+
+
+@pytest.mark.parametrize(
+    ("accept", "media"),
+    [
+        ("application/json; charset=utf-8", "application/json"),
+        ("application/json;version=1", "application/json"),
+        ("application/json;version=1;q=0.2, text/csv;header=present;q=0.9", "text/csv"),
+        ("text/csv; charset=utf-8", "text/csv"),
+        ("TEXT/CSV", "text/csv"),
+        ("text/*", "text/csv"),
+        ("text/csv;q=0.9, application/json;q=0.5", "text/csv"),
+        ("*/*", "application/json"),
+        ("application/*", "application/json"),
+        ("application/json;q=0, */*", "text/csv"),
+        ("image/png, */*;q=0.1", "application/json"),
+        ("", "application/json"),
+    ],
+)
+def test_of_an_accept_header_only_the_preference_counts(client, accept, media):
+    response = send(client, orjson.dumps(SHIFT), Accept=accept)
+    assert (response.status_code, response.mimetype) == (200, media)
+
+
+@pytest.mark.parametrize("accept", ["text/html;q=0.5", "*/*;q=0", "application/jsonp"])
+def test_what_nobody_offers_is_not_acceptable(client, accept):
+    assert_refused(send(client, b"{}", Accept=accept), 406, "not-acceptable", "Accept")
 
 
 def test_what_the_route_does_not_offer_is_refused_in_problem_json_all_the_same(client):
@@ -123,6 +193,9 @@ def test_the_table_as_csv_holds_the_numbers_of_the_json(client):
     answer = client.post(TABLE, json=request).get_json()["result"]
     response = client.post(TABLE, json=request, headers={"Accept": "text/csv"})
     assert response.content_type == "text/csv; charset=utf-8"
+    provenance = client.post(TABLE, json=request).get_json()["provenance"]
+    assert response.headers["Molwright-Request-Digest"] == provenance["digest"]
+    assert response.headers["Molwright-Release"] == provenance["release"]
     rows = list(csv.DictReader(io.StringIO(response.get_data(as_text=True))))
     assert len(rows) == 2 * len(answer["species"])
     for row in rows:
@@ -185,9 +258,12 @@ def test_another_method_is_told_which_is_allowed(client, method):
     assert response.mimetype == "application/problem+json"
 
 
-@pytest.mark.parametrize("path", ["/v1/nothing", "/v1/stoichiometric-table/", "//v1/conversion"])
+@pytest.mark.parametrize(
+    "path",
+    ["/v1/nothing", "/v1/stoichiometric-table/", "/v1//conversion", "/problems/", "*", "/%"],
+)
 def test_an_unknown_path_is_a_problem_document(client, path):
-    response = client.post(path, json={})
+    response = client.post(path, json={}, environ_overrides={"PATH_INFO": path})
     assert response.status_code == 404
     assert response.get_json()["type"] == "/problems/no-such-route"
 
@@ -199,6 +275,14 @@ def test_faults_of_several_kinds_are_told_together(client):
     assert_refused(response, 400, "missing-field", "/key")
     assert_refused(response, 400, "not-a-choice", "/feed/phase")
     assert_refused(response, 400, "unknown-field", "/nonsense")
+
+
+def test_a_detail_that_goes_on_has_no_full_stop_within(client):
+    feed = {"phase": "gas", "flows": {"CO": "1 kmol/h", "O2": "2 kmoles/h"}}
+    request = {"reactions": ["CO + O2 -> CO2"], "key": "CO", "feed": feed, "conversions": [0.5]}
+    document = post(client, "stoichiometric-table", request).get_json()
+    assert document["errors"][0]["detail"].endswith("2 CO2.")
+    assert document["detail"].endswith("2 CO2; and 1 more under 'errors'")
 
 
 def test_at_most_a_hundred_faults_are_listed_and_all_are_counted(client):
