@@ -15,7 +15,7 @@ Every flow is a linear form of the unknowns.
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -179,14 +179,22 @@ def build_account(problem: AccountProblem) -> Account:
     return _assemble(problem, readings, writer, sums, reactions, released=None)
 
 
-def release_outlet(account: Account) -> Account:
+def release_outlet(account: Account, absent: Sequence[int] = ()) -> Account:
     """Return the account with feed and outlet unconnected, on the same readings.
 
     What leaves is then known from the readings of the outlet alone. Only where
     no meter tells how much leaves in a stream, the substances that take no
-    part in any reaction still tie it to the feed.
+    part in any reaction still tie it to the feed. The unknown flows ``absent``
+    are left out of the feed.
     """
     problem = account.problem
+    if absent:
+        gone = {(account.unknowns[k].stream, account.unknowns[k].index) for k in absent}
+        feed = tuple(
+            replace(stream, present=frozenset(i for i in fed_in(stream) if (g, i) not in gone))
+            for g, stream in enumerate(problem.feed)
+        )
+        problem = replace(problem, feed=feed)
     unmetered = frozenset(q for q, stream in enumerate(problem.outlet) if not stream.flows)
     return _assemble(
         problem, account.readings, account.writer, account.sums, [], released=unmetered

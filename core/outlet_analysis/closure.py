@@ -17,6 +17,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Note
 from core.outlet_analysis.account import Account, release_outlet
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.preparation import BLOCK, prepare
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
@@ -46,52 +47,67 @@ class Closures:
 
 def element_closures(found: Estimate) -> Closures:
     """Return the element closures of the readings of an estimate with an outlet."""
-    account = release_outlet(found.account)
-    reactions = account.problem.reactions
+    reactions = found.account.problem.reactions
     elements, atoms = element_matrix(reactions)
-    single = account.readings.samples is None
-    samples = 1 if single else len(found.z)
-    count = len(elements)
-    shape = (samples, count)
-    values = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
-    spread = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
-    unread = np.zeros((samples, 2, len(reactions.substances)), dtype=bool)
-    into, out = atoms @ account.feed_map, atoms @ account.outlet_map
-    tied: BoolArray = np.asarray(np.all(np.abs(into - out) < 1e-12, axis=1) & into.any(axis=1))
-    flowing: BoolArray = np.asarray(np.any([account.feed_map, account.outlet_map], axis=(0, 2)))
+    single = found.account.readings.samples is None
+    absent = np.atleast_2d(found.absent)
+    of = _Closures(len(absent), len(elements), len(reactions.substances))
+    flowing = np.any([found.account.feed_map, found.account.outlet_map], axis=(0, 2))
     opaque = [
         i
         for i, substance in enumerate(reactions.substances)
         if substance.formula is None and flowing[i]
     ]
-    if count and not opaque:
-        for first in range(0, samples, BLOCK):
-            rows = slice(found.first + first, found.first + min(first + BLOCK, samples))
-            for outcome in fit_block(prepare(account, rows), None):
-                if not isinstance(outcome, Fitted):
-                    continue
-                at = first + outcome.rows
-                z, covariance = outcome.with_covariance()
-                everything = np.concatenate([into, out, account.feed_map, account.outlet_map])
-                hidden_of = np.split(_open(outcome, everything), [count, 2 * count])
-                open_in, open_out = hidden_of[:2]
-                for name, forms, hidden in (("into", into, open_in), ("out", out, open_out)):
-                    part = forms_of(z, covariance, forms)
-                    values[name][at] = np.where(hidden, np.nan, part.value)
-                    spread[name][at] = np.where(hidden, np.nan, part.u)
-                part = ratios(z, covariance, out, into)
-                hidden = open_in | open_out | tied
-                values["ratio"][at] = np.where(hidden, np.nan, part.value)
-                spread["ratio"][at] = np.where(hidden, np.nan, part.u)
-                unread[at] = hidden_of[2].reshape(unread.shape[1:])
-    notes = _notes(account, elements, atoms, tied, unread, opaque)
-    into_of, out_of, ratio_of = (
-        Uncertain(values[name][0], spread[name][0])
-        if single
-        else Uncertain(values[name], spread[name])
-        for name in ("into", "out", "ratio")
+    if elements and not opaque:
+        # What was taken as absent from the feed is so here; mostly that is nothing at all.
+        patterns, which = absent[:1], np.zeros(len(absent), dtype=np.intp)
+        if absent.any():
+            patterns, which = np.unique(absent, axis=0, return_inverse=True)
+        for k, pattern in enumerate(patterns):
+            account = release_outlet(found.account, np.flatnonzero(pattern).tolist())
+            rows = np.flatnonzero(which.reshape(-1) == k)
+            for first in range(0, len(rows), BLOCK):
+                of.fill(account, atoms, rows[first : first + BLOCK], found.first)
+    notes = _notes(found.account, elements, atoms, of, opaque)
+    into, out, ratio = (
+        Uncertain(value[0], u[0]) if single else Uncertain(value, u)
+        for value, u in ((of.values[name], of.spread[name]) for name in ("into", "out", "ratio"))
     )
-    return Closures(elements, into_of, out_of, ratio_of, tuple(notes))
+    return Closures(elements, into, out, ratio, tuple(notes))
+
+
+class _Closures:
+    """Arrays of N samples' closures, to be filled account by account."""
+
+    def __init__(self, samples: int, elements: int, substances: int) -> None:
+        shape = (samples, elements)
+        self.values = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+        self.spread = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+        self.tied = np.zeros(shape, dtype=bool)
+        self.unread = np.zeros((samples, 2, substances), dtype=bool)
+
+    def fill(self, account: Account, atoms: FloatArray, rows: IntArray, offset: int) -> None:
+        count = len(atoms)
+        into, out = atoms @ account.feed_map, atoms @ account.outlet_map
+        tied = np.all(np.abs(into - out) < 1e-12, axis=1) & into.any(axis=1)
+        self.tied[rows] = tied
+        for outcome in fit_block(prepare(account, offset + rows), None):
+            if not isinstance(outcome, Fitted):
+                continue
+            at = rows[outcome.rows]
+            z, covariance = outcome.with_covariance()
+            everything = np.concatenate([into, out, account.feed_map, account.outlet_map])
+            hidden_of = np.split(_open(outcome, everything), [count, 2 * count])
+            open_in, open_out = hidden_of[:2]
+            for name, forms, hidden in (("into", into, open_in), ("out", out, open_out)):
+                part = forms_of(z, covariance, forms)
+                self.values[name][at] = np.where(hidden, np.nan, part.value)
+                self.spread[name][at] = np.where(hidden, np.nan, part.u)
+            part = ratios(z, covariance, out, into)
+            hidden = open_in | open_out | tied
+            self.values["ratio"][at] = np.where(hidden, np.nan, part.value)
+            self.spread["ratio"][at] = np.where(hidden, np.nan, part.u)
+            self.unread[at] = hidden_of[2].reshape(self.unread.shape[1:])
 
 
 def _open(outcome: Fitted, forms: FloatArray) -> BoolArray:
@@ -107,8 +123,7 @@ def _notes(
     account: Account,
     elements: tuple[str, ...],
     atoms: FloatArray,
-    tied: BoolArray,
-    unread: np.ndarray[tuple[int, ...], np.dtype[np.bool_]],
+    of: _Closures,
     opaque: list[int],
 ) -> list[Note]:
     names = account.problem.reactions.names
@@ -125,7 +140,7 @@ def _notes(
     counted = counting(account.readings.samples)
     notes = []
     for e, element in enumerate(elements):
-        holds = unread & (atoms[e] > 0)
+        holds = of.unread & (atoms[e] > 0)
         marks: BoolArray = np.asarray(holds.any(axis=(1, 2)))
         if marks.any():
             words, facts = counted(marks)
@@ -144,7 +159,7 @@ def _notes(
                     facts={"element": element, "substances": " and ".join(where), **facts},
                 )
             )
-        elif tied[e]:
+        elif of.tied[:, e].any():
             notes.append(
                 Note(
                     "closure-by-tie",

@@ -85,6 +85,9 @@ class Estimate:
     told : ndarray of bool, shape (..., n)
         Unknowns that the readings tell. The others stand where they were
         guessed; no flow or extent depends on them.
+    absent : ndarray of bool, shape (..., n)
+        Unknown flows taken as nothing: of what was removed from a feed's
+        sample and no reading tells.
     inflation : ndarray, shape (...)
         Largest inflation of a variance by what the readings fail to tell apart.
     without_suspects : tuple of WithoutSuspects
@@ -108,6 +111,7 @@ class Estimate:
     inconsistent: BoolArray
     per_mole_of_key: BoolArray
     told: BoolArray
+    absent: BoolArray
     inflation: FloatArray
     without_suspects: tuple[WithoutSuspects, ...] = ()
     failed: Mapping[int, Fault] = field(default_factory=dict)

@@ -11,6 +11,7 @@ from core.arrays import FloatArray
 from core.errors import Amount, Note, Subject, refuse
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.reconciliation import estimate_feed
+from core.outlet_analysis.remarks import ASSUMPTIONS
 from core.reactions.reaction_set import ReactionSet
 from core.streams.known import (
     Conditions,
@@ -68,8 +69,9 @@ def known_feed(
     """
     if all(is_direct(stream) for stream in streams):
         each = [direct_flows(stream, reactions.molar_masses) for stream in streams]
+        flows = each[0] if len(each) == 1 else np.sum(each, axis=0)
         stream, assumed = join_streams(
-            reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=batch
+            reactions, flows, streams, conditions, each=each, batch=batch
         )
         return KnownFeed(
             stream,
@@ -104,8 +106,8 @@ def known_feed(
         stream,
         estimated=True,
         per_mole_of_key=scaled,
-        assumed=(*assumed, *(note for note in told if note.code == "per-mole-of-key")),
-        notes=tuple(note for note in told if note.code != "per-mole-of-key"),
+        assumed=(*assumed, *(note for note in told if note.code in ASSUMPTIONS)),
+        notes=tuple(note for note in told if note.code not in ASSUMPTIONS),
         weighed=frozenset(
             subject
             for subject, redundancy in zip(

@@ -17,8 +17,9 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fact, Fault, Readings, Subject
-from core.outlet_analysis.account import Account, listed
+from core.outlet_analysis.account import Account, fed_in, listed
 from core.outlet_analysis.forms import Forms
+from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import (
     FRACTIONS,
     FURTHER,
@@ -87,6 +88,73 @@ def touched(forms: FloatArray, natural: FloatArray, directions: FloatArray) -> B
 
 
 _Claim = tuple[int, str, str]
+
+
+def taken_as_absent(
+    account: Account, z: FloatArray, natural: FloatArray, directions: FloatArray
+) -> IntArray:
+    """Unknown flows that may be taken as nothing so that all that is asked for is settled.
+
+    They are those of substances removed fully from a feed's sample, whose flow
+    no reading tells, and of the same substances leaving where no reaction
+    makes them. None, where anything else is open with them: a conversion, an
+    extent or another flow.
+    """
+    none = np.empty(0, dtype=np.intp)
+    problem = account.problem
+    inert = ~np.any(problem.reactions.nu != 0, axis=0)
+    removed = {(g, i) for g, i in _removed_from_feed(account)}
+    always = {
+        i
+        for _, i in removed
+        if all((g, i) in removed for g, s in enumerate(problem.feed) if i in fed_in(s))
+    }
+    columns = np.array(
+        [
+            column
+            for column, of in enumerate(account.unknowns)
+            if of.kind == "flow"
+            and (
+                (of.stream, of.index) in removed
+                or (of.stream >= len(problem.feed) and of.index in always and inert[of.index])
+            )
+        ],
+        dtype=np.intp,
+    )
+    moved = np.linalg.norm(directions[columns], axis=1) > TOUCHED
+    columns = columns[moved]
+    if not len(columns):
+        return none
+    substances = {account.unknowns[column].index for column in columns.tolist()}
+    others = np.array([i not in substances for i in range(len(inert))])
+    kept = [account.feed_map[others]]
+    if problem.outlet:
+        key = problem.key
+        slope = _conversion_slope(account.feed_map[key], account.outlet_map[key], z)
+        kept += [account.outlet_map[others], account.extent_map, slope[None]]
+    if touched(np.concatenate(kept), natural, directions).any():
+        return none
+    rest = without_columns(directions, columns)
+    flows = np.concatenate([account.feed_map, account.outlet_map])
+    return none if touched(flows, natural, rest).any() else columns
+
+
+def without_columns(directions: FloatArray, columns: IntArray) -> FloatArray:
+    """What of the open directions (n, d) is left with some unknowns known, (n, d')."""
+    _, values, right = np.linalg.svd(directions[columns], full_matrices=True)
+    rank = int((values > TOUCHED).sum())
+    return np.asarray(directions @ right[rank:].T)
+
+
+def _removed_from_feed(account: Account) -> list[tuple[int, int]]:
+    """Feed stream and substance of everything that was fully removed and may be there."""
+    return [
+        (g, removal.substance)
+        for g, stream in enumerate(account.problem.feed)
+        if stream.analysis is not None
+        for removal in stream.analysis.removed
+        if removal.residual == 0 and removal.substance in fed_in(stream)
+    ]
 
 
 @dataclass(frozen=True, eq=False)
@@ -174,6 +242,15 @@ def under_determined(
         options = "none found among the flows and fractions of these streams"
         detail = "the readings leave open {open}; readings that would settle it: {further}"
     facts: dict[str, Fact] = {"open": listed(words), "further": options}
+    open_flows = touched(account.stream_map, natural, directions)
+    for k, (g, i) in enumerate(_removed_from_feed(account)):
+        if open_flows[g * len(names) + i]:
+            where = describe_stream(account.streams, len(account.problem.feed), g)
+            facts[f"removed_{k}"] = names[i]
+            detail += (
+                f". {{removed_{k}}} is removed from the sample of {where}, and no reading tells its"
+                " flow"
+            )
     if missing:
         detail += ". Missing here: {missing}"
         facts["missing"] = Readings(missing)

@@ -93,7 +93,7 @@ class Group:
     dependent: IntArray
 
 
-def prepare(account: Account, rows: slice) -> Block:
+def prepare(account: Account, rows: slice | IntArray) -> Block:
     """Return the samples ``rows`` of the account's readings, ready to be fitted."""
     readings = account.readings
     value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
@@ -125,17 +125,16 @@ def prepare(account: Account, rows: slice) -> Block:
         np.concatenate([forms.exponents, np.zeros((1, forms.exponents.shape[1]))]),
     )
     block = Block(account, forms, measured, sigma, active, bound, np.empty(0))
-    return Block(account, forms, measured, sigma, active, bound, _nominal(block))
+    per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
+    return Block(account, forms, measured, sigma, active, bound, _nominal(block, per_mole))
 
 
-def _nominal(block: Block) -> FloatArray:
+def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
     """Orders of magnitude of every unknown from single readings, shape (N, n)."""
     account, measured, active = block.account, block.measured, block.active
     readings = account.readings
     metered = active[:, :-1] & readings.flow
-    flow = np.where(metered, np.abs(measured[:, :-1]) / readings.per_mole, 0.0).max(
-        axis=1, initial=0.0
-    )
+    flow = np.where(metered, np.abs(measured[:, :-1]) / per_mole, 0.0).max(axis=1, initial=0.0)
     flow = np.where(flow > 0, flow, 1.0)
     share = account.of_flow + 0.05 * account.of_extent
     nominal: FloatArray = flow[:, None] * (share / max(1, np.count_nonzero(account.of_flow)))

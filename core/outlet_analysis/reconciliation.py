@@ -117,6 +117,8 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         if outcome.directions.shape[1]:
             moved = np.linalg.norm(outcome.directions, axis=1)
             out.told[at] = moved <= TOUCHED * outcome.natural
+        if len(outcome.absent):
+            out.leave_out(at, outcome.absent)
         for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
             one = slice(row, row + 1)
             failed[int(at[row])] = open_at(
@@ -138,6 +140,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         inconsistent=out.chi_square > out.limit,
         per_mole_of_key=block.active[:, m],
         told=out.told,
+        absent=out.absent,
         inflation=out.inflation,
         without_suspects=without,
         failed=failed,
@@ -185,6 +188,7 @@ class _Results:
         self.freedom = np.zeros(samples, dtype=np.intp)
         self.sets = np.zeros((samples, m), dtype=np.intp)
         self.told = np.ones((samples, n), dtype=bool)
+        self.absent = np.zeros((samples, n), dtype=bool)
 
     def fill(self, at: IntArray, seen: Examined, sets: IntArray, m: int) -> None:
         self.z[at] = seen.curvature.z
@@ -199,11 +203,18 @@ class _Results:
         self.freedom[at] = seen.freedom
         self.sets[at] = sets
 
+    def leave_out(self, at: IntArray, absent: IntArray) -> None:
+        """Take unknown flows as nothing, exactly."""
+        self.absent[np.ix_(at, absent)] = True
+        self.z[np.ix_(at, absent)] = 0.0
+        self.covariance[np.ix_(at, absent)] = 0.0
+        self.covariance[np.ix_(at, np.arange(self.z.shape[1]), absent)] = 0.0
+
     def blank(self, rows: list[int]) -> None:
         """Leave no number where a sample failed after all."""
-        for name, array in vars(self).items():
+        for array in vars(self).values():
             if rows:
-                array[rows] = 0 if name in ("freedom", "sets", "told") else np.nan
+                array[rows] = np.nan if array.dtype == float else 0
 
 
 def _single(block: Estimate) -> Estimate:

@@ -15,6 +15,8 @@ from core.outlet_analysis.estimate import Estimate
 ILL_CONDITIONED = 1e8
 """Inflation of a variance from which on the answer is called ill-conditioned."""
 
+ASSUMPTIONS = frozenset({"per-mole-of-key", "removed-taken-as-absent", "outlet-placement"})
+"""Codes of what an estimate takes for granted; the other remarks are about what it found."""
 UNREAD = 0.03
 """Share of a stream that no value names from which on a whole analysis is doubted."""
 
@@ -70,6 +72,7 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("outlet",) if problem.outlet else ("feed",),
             facts=facts,
         )
+    yield from _absent(found, counted)
     yield from _placement(account)
     yield from _below_zero(found, counted)
     yield from _backwards(found, counted)
@@ -87,6 +90,26 @@ def remarks(found: Estimate) -> Iterator[Note]:
             )
     yield from _sum_notes(found, counted)
     yield from _removal_notes(found, counted)
+
+
+def _absent(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """What was removed from a feed's sample, and is taken not to have been there."""
+    account = found.account
+    for column in np.flatnonzero(found.absent.any(axis=0)).tolist():
+        unknown = account.unknowns[column]
+        if unknown.stream >= len(account.problem.feed):
+            continue
+        analysis = account.streams[unknown.stream].analysis
+        assert analysis is not None
+        words, facts = counted(found.absent[:, column])
+        yield Note(
+            "removed-taken-as-absent",
+            "{substance} is removed from the sample before it is analysed, and no reading tells"
+            " how much of it is fed: taken as none. If there is some, state its flow as a feed"
+            " stream of its own" + words,
+            subject=analysis.subject,
+            facts={"substance": account.problem.reactions.names[unknown.index], **facts},
+        )
 
 
 def _placement(account: Account) -> Iterator[Note]:
@@ -201,7 +224,9 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
         weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)
         seen = account.writer.sampled(of.stream, weights * account.writer.own[of.stream])
-        share = flows[:, unread] * weights[unread] / (np.nan_to_num(flows) @ seen)[:, None]
+        whole = np.nan_to_num(flows) @ seen
+        marks &= whole > 0
+        share = flows[:, unread] * weights[unread] / np.where(marks, whole, 1.0)[:, None]
         marks &= share.sum(axis=1) > UNREAD
         if marks.any():
             words, facts = counted(marks)

@@ -16,8 +16,10 @@ from core.outlet_analysis.observability import (
     equilibrated,
     open_directions,
     open_patterns,
+    taken_as_absent,
     touched,
     under_determined,
+    without_columns,
 )
 from core.outlet_analysis.preparation import AGREEMENT, Block, Group, conflict, groups
 
@@ -35,6 +37,8 @@ class Fitted:
     directions : ndarray, shape (n, d)
         What the readings leave open, in the sizes of the unknowns; it was held
         where it started.
+    absent : ndarray of int
+        Unknown flows that were taken as nothing.
     """
 
     rows: IntArray
@@ -42,6 +46,18 @@ class Fitted:
     z: FloatArray
     natural: FloatArray
     directions: FloatArray
+    absent: IntArray
+
+    def samples(self, marks: BoolArray) -> Fitted:
+        """Return those of the samples marked."""
+        return Fitted(
+            self.rows[marks],
+            self.fit.samples(marks),
+            self.z[marks],
+            self.natural[marks],
+            self.directions,
+            self.absent,
+        )
 
     def with_covariance(self) -> tuple[FloatArray, FloatArray]:
         """The unknowns and their covariance, shapes (len(rows), n) and (len(rows), n, n)."""
@@ -87,30 +103,72 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
     scaled = equilibrated(forms, group.start[first], active[first], group.natural[first])
     is_open = open_patterns(scaled)
     determined = ~is_open[label]
-    nothing = np.empty((len(block.account.unknowns), 0))
+    n = len(block.account.unknowns)
+    told = _Held(np.empty((n, 0)), np.empty(0, dtype=np.intp))
     if determined.all():
-        yield from _solved(block, group, determined, group.fit, nothing)
+        yield from _solved(block, group, determined, group.fit, told)
         return
     if determined.any():
-        yield from _solved(block, group, determined, group.fit.samples(determined), nothing)
+        yield from _solved(block, group, determined, group.fit.samples(determined), told)
     for pattern in np.flatnonzero(is_open).tolist():
         mine = label == pattern
         sample = int(first[pattern])
         natural = group.natural[sample]
         directions = open_directions(scaled[pattern])
+        absent = told.absent
         if reported is not None and touched(reported, natural, directions).any():
-            yield group.rows[mine], _left_open(block, group, sample, directions)
-            continue
-        held = directions.T / natural
-        fit = _holding(group.fit.samples(mine), held, group.start[mine])
-        yield from _solved(block, group, mine, fit, directions * natural[:, None])
+            absent = taken_as_absent(block.account, group.start[sample], natural, directions)
+            if not len(absent):
+                yield group.rows[mine], _left_open(block, group, sample, directions)
+                continue
+        open_ = without_columns(directions, absent) if len(absent) else directions
+        held = np.concatenate([open_.T / natural, np.eye(n)[absent]])
+        start = group.start[mine]
+        at = start @ held.T
+        at[:, open_.shape[1] :] = 0.0
+        fit = _holding(group.fit.samples(mine), held, at)
+        for outcome in _solved(block, group, mine, fit, _Held(open_ * natural[:, None], absent)):
+            if isinstance(outcome, Fitted) and len(absent):
+                yield from _possible(block, group, outcome, directions)
+            else:
+                yield outcome
+
+
+@dataclass(frozen=True, eq=False)
+class _Held:
+    """What is held in a fit: open directions (n, d) in the sizes of the unknowns, absent flows."""
+
+    directions: FloatArray
+    absent: IntArray
+
+
+def _possible(
+    block: Block, group: Group, fitted: Fitted, directions: FloatArray
+) -> Iterator[Outcome]:
+    """Part samples in which something may be absent from those in which it is used up."""
+    account = block.account
+    substances = sorted({account.unknowns[column].index for column in fitted.absent.tolist()})
+    forms = account.outlet_map[substances]
+    z, covariance = fitted.with_covariance()
+    u = np.sqrt(np.maximum(((forms @ covariance) * forms).sum(axis=-1), 0.0))
+    scale = np.abs(z @ account.feed_map.T).max(axis=1, keepdims=True)
+    wrong = (z @ forms.T < -np.maximum(2 * u, 1e-9 * scale)).any(axis=1)
+    if not wrong.any():
+        yield fitted
+        return
+    for k in np.flatnonzero(wrong).tolist():
+        sample = int(np.flatnonzero(group.rows == fitted.rows[k])[0])
+        yield fitted.rows[k : k + 1], _left_open(block, group, sample, directions)
+    if not wrong.all():
+        yield fitted.samples(~wrong)
 
 
 def _left_open(block: Block, group: Group, sample: int, directions: FloatArray) -> Fault:
     """Say what a sample of a group leaves open, looked at where its readings are met."""
     one = slice(sample, sample + 1)
     fit, start, natural = group.fit.samples(one), group.start[one], group.natural[one]
-    held = least_squares(_holding(fit, directions.T / natural, start), start, natural)
+    forms = directions.T / natural
+    held = least_squares(_holding(fit, forms, start @ forms.T), start, natural)
     return open_at(block, group.rows[sample], held.z if held.converged[0] else start, natural)
 
 
@@ -123,11 +181,11 @@ def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault
     return under_determined(block.account, z[0], natural[0], scaled, missing)
 
 
-def _holding(fit: Fit, held: FloatArray, z: FloatArray) -> Fit:
-    """Add equations that keep the forms ``held`` (d, n) at their values in ``z``."""
+def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:
+    """Add equations that keep the forms ``held`` (d, n) at the values ``at`` (N, d)."""
     d, forms = len(held), fit.forms
     constants = forms.constants
-    m, n = len(forms.numerators), len(z)
+    m, n = len(forms.numerators), len(at)
     return Fit(
         Forms(
             np.concatenate([constants, np.ones((*constants.shape[:-1], d))], axis=-1),
@@ -135,7 +193,7 @@ def _holding(fit: Fit, held: FloatArray, z: FloatArray) -> Fit:
             forms.bases,
             np.concatenate([forms.exponents, np.zeros((d, forms.exponents.shape[1]))]),
         ),
-        np.concatenate([fit.measured, z @ held.T], axis=1),
+        np.concatenate([fit.measured, at], axis=1),
         np.concatenate([fit.weight, np.zeros((n, d))], axis=1),
         np.concatenate([fit.stiff, np.arange(m, m + d)]),
         np.concatenate([fit.compliance, np.zeros((n, d))], axis=1),
@@ -143,7 +201,7 @@ def _holding(fit: Fit, held: FloatArray, z: FloatArray) -> Fit:
 
 
 def _solved(
-    block: Block, group: Group, mine: BoolArray, fit: Fit, directions: FloatArray
+    block: Block, group: Group, mine: BoolArray, fit: Fit, held: _Held
 ) -> Iterator[Outcome]:
     start, natural, rows = group.start, group.natural, group.rows
     if not mine.all():
@@ -167,12 +225,11 @@ def _solved(
                 rows[good & ~agreed],
                 conflict(block.account, [row for row in exact if row < count]),
             )
+    fitted = Fitted(rows, fit, solution.z, natural, held.directions, held.absent)
     if agreed.all():
-        yield Fitted(rows, fit, solution.z, natural, directions)
+        yield fitted
     elif agreed.any():
-        yield Fitted(
-            rows[agreed], fit.samples(agreed), solution.z[agreed], natural[agreed], directions
-        )
+        yield fitted.samples(agreed)
 
 
 def not_converged(account: Account) -> Fault:

@@ -71,6 +71,8 @@ def problems(count: int) -> Any:
         if found.failed:
             assert {fault.code for fault in found.failed.values()} == {"under-determined"}
             continue
+        if found.absent.any():  # an assumption, and no minimum over all unknowns
+            continue
         made += 1
         yield found, state
 
@@ -127,7 +129,7 @@ def test_truth_without_noise_is_found_exactly() -> None:
         truth = predicted(problem, state)
         series = {s: Series(np.array([v]), np.array([abs(v) * 0.01])) for s, v in truth.items()}
         found = estimate(replace(problem, series=series))
-        if found.failed:
+        if found.failed or found.absent.any():
             continue
         checked += 1
         assert_allclose(found.feed_flows[0], sum(state.feed), rtol=1e-8, atol=1e-9)
@@ -165,7 +167,7 @@ def test_chi_square_is_distributed_as_it_should(seed: int) -> None:
     while True:
         problem, state = random_problem(rng)
         found = estimate(with_noise(problem, state, rng, 2000))
-        if not found.failed and found.degrees_of_freedom[0] >= 3:
+        if not (found.failed or found.absent.any()) and found.degrees_of_freedom[0] >= 3:
             break
     freedom = found.degrees_of_freedom[0]
     assert np.all(found.degrees_of_freedom == freedom)

@@ -218,6 +218,34 @@ def test_an_empty_series() -> None:
     assert conversion_results(found).conversion.value.shape == (0,)
 
 
+def test_a_gas_meter_whose_conditions_vary_over_more_samples_than_a_block(
+    monkeypatch: Any,
+) -> None:
+    problem = shift_problem()
+    reactions = problem.reactions
+    gas = stream_of(
+        reactions,
+        "feed",
+        total=(5.0, 0.05),
+        kind="volume",
+        molar_volume=0.0224,
+        analysis=analysis_of(
+            reactions, "feed", {"CO": (0.2, 0.002), "H2O": (0.6, 0.006)}, balance="N2"
+        ),
+    )
+    rng = np.random.default_rng(4)
+    meter = Series(np.full(9, 5.0), np.full(9, 0.05), None, rng.uniform(0.02, 0.03, 9))
+    outlet = stream_of(
+        reactions, "outlet", analysis=analysis_of(reactions, "outlet", {"CO": (0.1, 0.001)})
+    )
+    series = account(reactions, "CO", gas, outlet, series={("feed", "flow"): meter})
+    whole = estimate(series)
+    assert_allclose(whole.feed_flows.sum(axis=1), 5.0 / meter.molar_volume, rtol=1e-9)
+    monkeypatch.setattr(reconciliation, "BLOCK", 4)
+    assert_allclose(estimate(series).z, whole.z, rtol=1e-10)
+    assert conversion_results(whole).closures is not None
+
+
 def test_intervals_cover_what_they_say() -> None:
     # 10,000 seeded samples: binomial spread 0.2 %.
     problem = shift_problem()
