@@ -13,7 +13,8 @@ can print them in the units of the request.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+import re
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 
 Subject = tuple[str | int, ...]
@@ -47,6 +48,18 @@ Fact = Amount | Readings | str | int
 """A value quoted by a fault: an amount, readings, a name or a count."""
 
 
+_QUOTED = re.compile(r"\{([a-zA-Z_][a-zA-Z_0-9]*)\}")
+
+
+def sentence(detail: str, facts: Mapping[str, Fact], say: Callable[[Fact], str]) -> str:
+    """Return a detail with its facts put in, in one pass.
+
+    Not by ``str.format``: a detail may hold names of the caller's, and braces in
+    them are text.
+    """
+    return _QUOTED.sub(lambda m: say(facts[m[1]]) if m[1] in facts else m[0], detail)
+
+
 @dataclass(frozen=True)
 class Fault:
     """One thing that stands against computing an answer.
@@ -71,7 +84,7 @@ class Fault:
 
     def __str__(self) -> str:
         """Say the sentence with SI values."""
-        return self.detail.format_map({k: str(v) for k, v in self.facts.items()})
+        return sentence(self.detail, self.facts, str)
 
 
 class Refused(Exception):  # noqa: N818 - the word of the contract
@@ -106,4 +119,4 @@ class Note:
 
     def __str__(self) -> str:
         """Say the sentence with SI values."""
-        return self.detail.format_map({k: str(v) for k, v in self.facts.items()})
+        return sentence(self.detail, self.facts, str)

@@ -662,6 +662,11 @@ NOTES: dict[str, Entry] = {
         "Concentrations not known",
         "The volume of the stream is not known, so its concentrations are null.",
     ),
+    "nothing-in-phase": Entry(
+        "Nothing in the phase",
+        "The readings leave nothing in the phase of a stream. Look for an analyser or a meter that"
+        " reads zero.",
+    ),
     "mole-fractions-not-known": Entry(
         "Mole fractions not known",
         "A liquid given by concentrations may hold a solvent that they do not name, so its mole"

@@ -427,6 +427,10 @@ class _Writer:
         names = self.reactions.names
         told = np.isfinite(flows)
         inside = None if conditions is None else in_phase(self.reactions, conditions.phase)
+        if inside is not None and told.all() and not flows[inside].sum() > TINY * abs(flows).sum():
+            # Nothing is left in the phase, so nothing is a fraction of it.
+            self._note(NOTHING_IN_PHASE)
+            inside = conditions = None
         if not told.all():
             # How a substance is shared out is open, so no total and no fraction is known.
             names = tuple(name for name, there in zip(names, told, strict=True) if there)
@@ -575,6 +579,15 @@ def _as_read(number_: Json | None) -> Json | None:
     return {k: float(f"{v:.14g}") if isinstance(v, float) else v for k, v in number_.items()}
 
 
+TINY = 1e-9
+"""Share of a stream's flows below which what is in its phase is rounding."""
+
+NOTHING_IN_PHASE = Note(
+    "nothing-in-phase",
+    "the readings leave nothing in the phase of a stream, so it has no mole fractions and no"
+    " concentrations",
+    "warning",
+)
 NO_CONCENTRATIONS = Note(
     "concentrations-not-known",
     "a stream has concentrations where its volume is known: state temperature and pressure of a"

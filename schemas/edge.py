@@ -16,8 +16,8 @@ from typing import Any, NamedTuple
 
 from core.constants import STANDARD_ATMOSPHERE
 from core.dimensions import DIMENSIONS, Exponents
-from core.errors import Amount, Fact, Fault, Note, Readings, Refused, Subject
-from schemas.quantities import Bound, RawQuantity
+from core.errors import Amount, Fact, Fault, Note, Readings, Refused, Subject, sentence
+from schemas.quantities import LARGEST, Bound, RawQuantity
 from schemas.shape import LocatedFault, MeaningError, child
 from schemas.units import (
     DEFAULT_UNITS,
@@ -31,6 +31,9 @@ from schemas.units import (
 )
 
 Json = dict[str, Any]
+
+SMALLEST = 1e-60
+"""Sizes in SI units below this, or above its inverse, are mistakes; products of them overflow."""
 
 OFTEN_GAUGE = frozenset({"mmH2O", "cmH2O", "mH2O", "inH2O", "psi"})
 """Units of pressure in which a plant's instruments most often show what is above the atmosphere."""
@@ -160,11 +163,7 @@ class EdgeMap:
         return f"{number['value']:.6g}{unit}"
 
     def _sentence(self, said: Fault | Note) -> str:
-        try:
-            return said.detail.format_map({k: self.say(v) for k, v in said.facts.items()})
-        except (KeyError, ValueError, IndexError):
-            # The caller's own braces stand in the sentence: it quotes no facts then.
-            return said.detail
+        return sentence(said.detail, said.facts, self.say)
 
     def notes(self, notes: Iterable[Note]) -> list[Json]:
         """Return notes as they stand in an answer."""
@@ -312,6 +311,11 @@ class RequestReader:
             self.fault("unit-not-allowed", pointer, f"{detail} is needed here")
             return None
         value = to_si(raw.value, unit, atmospheric_pressure=self.atmospheric_pressure)
+        # A number that is too small may have become zero on its way to SI.
+        stated = value or (plain and raw.value)
+        if (stated and not SMALLEST < abs(value) < 1 / SMALLEST) or abs(raw.value) > LARGEST:
+            self.fault("impossible-value", pointer, _beyond(raw))
+            return None
         if not _within(value, above, at_least):
             self.fault("impossible-value", pointer, _out_of_range(raw, dimension, above, at_least))
             return None
@@ -380,7 +384,7 @@ class RequestReader:
             pairs = zip(unit.exponents, exponents, strict=True)
             if _plain(unit) and all(abs(a - b) < 1e-9 for a, b in pairs):
                 value = to_si(raw.value, unit)
-                if value > 0 and math.isfinite(value):
+                if SMALLEST < value < 1 / SMALLEST and raw.value <= LARGEST:
                     return spelt, float(value)
                 self.fault("impossible-value", pointer, f"found {raw.text!r}; above zero is needed")
                 return None
@@ -406,6 +410,9 @@ class RequestReader:
                 return None
             return raw.u_rel * abs(value)
         assert raw.u is not None
+        if raw.u > LARGEST:
+            self.fault("impossible-value", child(pointer, "u"), _beyond(raw))
+            return None
         if raw.u_unit is None:
             return float(difference_to_si(raw.u, unit))
         stated = self.unit(raw.u_unit, child(pointer, "u"))
@@ -463,6 +470,13 @@ class RequestReader:
             tuple(self.assumed),
             self.atmospheric_pressure,
         )
+
+
+def _beyond(raw: RawQuantity) -> str:
+    return (
+        f"found {raw.text!r}; in SI units its size is beyond anything that is measured, so that"
+        " nothing could be computed with it: check value and unit"
+    )
 
 
 def words(dimension: str) -> str:

@@ -57,7 +57,8 @@ def read_feed(
     reader.at(subject, pointer)
     batch = is_batch(document)
     kept = len(reader.faults)
-    readings = StreamReader(reader, reactions, batch)
+    analysed = any("analysis" in stream for stream in document.get("streams", (document,)))
+    readings = StreamReader(reader, reactions, batch, weighed=analysed)
     streams = readings.metered(document, pointer, subject, "feed")
     conditions = read_conditions(readings, document, pointer, subject, streams, one_phase=True)
     if len(reader.faults) > kept or conditions is None or key < 0:

@@ -108,22 +108,31 @@ class Flag(StrictField):
 class Text(StrictField):
     """A JSON string that matches a pattern (linear-time, anchored)."""
 
-    def __init__(self, pattern: str = NAME_PATTERN, wanted: str = "", **kwargs: Any) -> None:
+    def __init__(
+        self,
+        pattern: str = NAME_PATTERN,
+        wanted: str = "",
+        longest: int | None = None,
+        **kwargs: Any,
+    ) -> None:
         super().__init__(**kwargs)
         self.pattern = pattern
+        self.longest = longest
         self.wanted = wanted or "1 to 80 characters without control characters are allowed"
         self._match = re.compile(pattern).fullmatch
 
     def _deserialize(self, value: Any, attr: Any, data: Any, **kwargs: Any) -> str:
         if not isinstance(value, str):
             raise _wrong_type("a string", value)
-        if self._match(value) is None:
+        too_long = self.longest is not None and len(value) > self.longest
+        if too_long or self._match(value) is None:
             raise ValidationError(message("bad-text", f"found {clip(value)!r}; {self.wanted}"))
         return value
 
     def published(self, convert: Converter) -> Published:
         """Return the string type and its pattern."""
-        return {"type": "string", "pattern": self.pattern}
+        longest = {} if self.longest is None else {"maxLength": self.longest}
+        return {"type": "string", "pattern": self.pattern, **longest}
 
 
 class Choice(StrictField):
@@ -329,6 +338,7 @@ class UncertainSchema(ClosedSchema):
         {
             "string": Text(
                 pattern=QUANTITY_PATTERN.replace("[+-]?", "", 1),
+                longest=80,
                 wanted='an uncertainty is a number of zero or more and a unit, such as "0.5 K"',
             ),
             "otherwise": Number(at_least=0),

@@ -18,13 +18,13 @@ from schemas.shape import message
 NUMBER_PATTERN = r"[+-]?(?:[0-9]{1,20}(?:\.[0-9]{0,20})?|\.[0-9]{1,20})(?:[eE][+-]?[0-9]{1,2})?"
 UNIT_PATTERN = r"(?:[ ][^\x00-\x1f]{1,40}|[^\x00-\x20.,0-9eE+][^\x00-\x1f]{0,39})?"
 QUANTITY_PATTERN = f"^{NUMBER_PATTERN}{UNIT_PATTERN}$"
-READING_PATTERN = f"^[<>]?[ ]?{NUMBER_PATTERN}{UNIT_PATTERN}$"
+READING_PATTERN = f"^(?:[<>][ ]?)?{NUMBER_PATTERN}{UNIT_PATTERN}$"
 LARGEST = 1e15
 """A number beyond this is a mistake, and would leave no digits for a balance."""
 
 MAX_UNIT_LENGTH = 40
 
-_READING = re.compile(f"([<>]?)[ ]?({NUMBER_PATTERN})({UNIT_PATTERN})")
+_READING = re.compile(f"(?:([<>])[ ]?)?({NUMBER_PATTERN})({UNIT_PATTERN})")
 
 Bound = Literal["below", "above"]
 
@@ -77,10 +77,8 @@ def parse_quantity(text: str, bounds: bool = False) -> RawQuantity:
                 f"found {clip(text)!r}; write a number and its unit, such as {example}",
             )
         )
-    value = float(match[2])
-    check_magnitude(value)
-    bound: dict[str, Bound] = {"<": "below", ">": "above"}
-    return RawQuantity(value, match[3].strip() or "1", bound=bound.get(match[1]))
+    bound: dict[str | None, Bound] = {"<": "below", ">": "above"}
+    return RawQuantity(float(match[2]), match[3].strip() or "1", bound=bound.get(match[1]))
 
 
 def check_magnitude(value: float) -> None:

@@ -18,10 +18,12 @@ class Readings:
 
     ``defaults`` keeps which readings have a default uncertainty in place of a
     stated one, by kind of reading, and how large it is over the reading: an
-    answer that used them lists them.
+    answer that used them lists them. Where nothing is estimated nothing is
+    ``weighed``, and no default is needed.
     """
 
     reader: RequestReader
+    weighed: bool = True
     defaults: dict[str, list[tuple[Subject, bool]]] = field(default_factory=dict)
     instruments: dict[str, list[Subject]] = field(default_factory=dict)
 
@@ -31,6 +33,8 @@ class Readings:
         """Return a reading with its uncertainty, stated or the default of its kind."""
         if found is None:
             return None
+        if not self.weighed:
+            return Measurement(found.value, found.u or 0.0, subject, found.bound)
         u = found.u
         if found.u_shared is not None:
             # Of one sample the two parts cannot be told apart; together they are its uncertainty.

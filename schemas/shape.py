@@ -170,7 +170,7 @@ class ClosedSchema(Schema):
         if options or self._hooked:
             return super().load(data, **options)
         if not isinstance(data, dict):
-            raise ValidationError({"_schema": [self.error_messages["type"]]})
+            raise ValidationError({ITSELF: [self.error_messages["type"]]})
         read = self._defaults.copy()
         faults: dict[Any, Any] = {}
         members = self._members
@@ -205,30 +205,40 @@ def load(schema: Schema, document: object) -> dict[str, Any]:
     try:
         loaded: dict[str, Any] = schema.load(document)  # type: ignore[arg-type]
     except ValidationError as error:
-        faults = sorted(_flatten(error.messages, ""), key=lambda fault: fault.place)
-        raise ShapeError(tuple(faults)) from None
+        found = sorted(_flatten(error.messages, ""), key=lambda fault: fault[0])
+        # To look for the nearest known name takes a while, and few faults are ever shown.
+        told = [_told(pointer, text, hint=k < SHOWN) for k, (pointer, text) in enumerate(found)]
+        raise ShapeError(tuple(told)) from None
     return loaded
 
 
-def _flatten(tree: object, pointer: str) -> Iterator[LocatedFault]:
+SHOWN = 100
+"""Faults that a caller is shown, at most."""
+
+ITSELF = object()
+"""Files a fault of an object itself, where its members' faults stand under their names."""
+
+
+def _flatten(tree: object, pointer: str) -> Iterator[tuple[str, str]]:
     if isinstance(tree, dict):
         for name, below in tree.items():
-            # Marshmallow files a fault of the object itself under this name.
-            place = pointer if name == "_schema" else child(pointer, name)
-            yield from _flatten(below, place)
+            yield from _flatten(below, pointer if name is ITSELF else child(pointer, name))
     elif isinstance(tree, list):
         for item in tree:
             yield from _flatten(item, pointer)
     else:
-        text = str(tree)
-        code = getattr(tree, "code", "wrong-type")
-        if code == "unknown-field":
-            text = _unknown_field(pointer, tree.allowed)  # type: ignore[attr-defined]
-        yield LocatedFault(code, text, pointer)
+        yield pointer, tree if isinstance(tree, str) else str(tree)
+
+
+def _told(pointer: str, text: str, *, hint: bool) -> LocatedFault:
+    code = getattr(text, "code", "wrong-type")
+    if code == "unknown-field":
+        text = _unknown_field(pointer, text.allowed if hint else ())  # type: ignore[attr-defined]
+    return LocatedFault(code, text, pointer)
 
 
 def _unknown_field(pointer: str, allowed: tuple[str, ...]) -> str:
     name = pointer.rpartition("/")[2].replace("~1", "/").replace("~0", "~")
     near = difflib.get_close_matches(name[:80], allowed, n=1)
-    hint = f"; did you mean {near[0]!r}?" if near else ""
-    return f"no field {name[:80]!r} is known here{hint} Allowed: {', '.join(sorted(allowed))}."
+    hint = f" (did you mean {near[0]!r}?)" if near else ""
+    return f"no field {name[:80]!r} is known here{hint}; allowed: {', '.join(sorted(allowed))}"

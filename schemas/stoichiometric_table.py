@@ -40,7 +40,7 @@ class OutletConditionsSchema(ClosedSchema):
 
     temperature = Quantity(metadata=describe("", examples=["600 degC"]))
     pressure = Quantity(metadata=describe("", examples=["0.22 barg"]))
-    compressibility = Number(above=0, at_most=10, metadata=describe("Z of a gas."))
+    compressibility = Number(at_least=0.01, at_most=10, metadata=describe("Z of a gas."))
 
 
 class StoichiometricTableRequest(AccountSchema):

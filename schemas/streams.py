@@ -34,7 +34,7 @@ class MeterSchema(ClosedSchema):
     temperature = Quantity(required=True, metadata=describe("At the meter.", examples=["40 degC"]))
     pressure = Quantity(required=True, metadata=describe("At the meter.", examples=["1.2 barg"]))
     compressibility = Number(
-        above=0, at_most=10, load_default=1.0, metadata=describe("Z of the gas at the meter.")
+        at_least=0.01, at_most=10, load_default=1.0, metadata=describe("Z of the gas at the meter.")
     )
 
 
@@ -53,7 +53,7 @@ class MeteredStreamSchema(ClosedSchema):
         metadata=describe("Of the stream; gives a gas its concentrations.", examples=["24 barg"])
     )
     compressibility = Number(
-        above=0, at_most=10, load_default=1.0, metadata=describe("Z of a gas.")
+        at_least=0.01, at_most=10, load_default=1.0, metadata=describe("Z of a gas.")
     )
     flows = Map(
         Quantity(),
@@ -116,15 +116,19 @@ FORMS = (
 
 @dataclass
 class StreamReader:
-    """Reads streams of a request into metered streams of the core."""
+    """Reads streams of a request into metered streams of the core.
+
+    ``weighed`` says that their readings are to be weighed by their uncertainties.
+    """
 
     reader: RequestReader
     reactions: ReactionSet
     batch: bool = False
+    weighed: bool = True
     readings: Readings = field(init=False)
 
     def __post_init__(self) -> None:
-        self.readings = Readings(self.reader)
+        self.readings = Readings(self.reader, self.weighed)
 
     @cached_property
     def analyses(self) -> AnalysisReader:

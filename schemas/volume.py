@@ -161,7 +161,7 @@ def _read_problem(
     if isinstance(said, str) or "rate" not in said:
         reader.fault(
             "field-needed",
-            "/reactions/0/rate",
+            "/reactions/0" if isinstance(said, str) else "/reactions/0/rate",
             "a reactor is sized by the rate of its reaction; write the reaction as an object with"
             " 'equation' and 'rate'",
         )

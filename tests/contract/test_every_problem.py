@@ -128,7 +128,7 @@ case(
     table(feed__flows__CO={"value": 1, "unit": "kmol/h", "u": 0.1, "u_rel": 0.1}),
     "/feed/flows/CO/u_rel",
 )
-case("field-needed", volume(reactions=["A -> R"]), "/reactions/0/rate")
+case("field-needed", volume(reactions=["A -> R"]), "/reactions/0")
 case("field-not-used", table(hold="volume"), "/hold")
 
 # -- substances and reactions

@@ -137,6 +137,9 @@ def test_a_hostile_unit_is_data(client, written):
         ({"unit": "kmol/h"}, "missing-field", "/feed/flows/CO/value"),
         ({"value": 1, "unit": "kmol/h", "sd": 1}, "unknown-field", "/feed/flows/CO/sd"),
         ("1e999 kmol/h", "not-a-quantity", "/feed/flows/CO"),
+        (" 1 kmol/h", "not-a-quantity", "/feed/flows/CO"),
+        ({"value": 1, "unit": "kmol/h", "u": "1" * 81}, "bad-text", "/feed/flows/CO/u"),
+        ({"value": 1, "_schema": 1}, "unknown-field", "/feed/flows/CO/_schema"),
         ("1,5 kmol/h", "not-a-quantity", "/feed/flows/CO"),
         ("NaN kmol/h", "not-a-quantity", "/feed/flows/CO"),
         ("<1 kmol/h", "not-a-quantity", "/feed/flows/CO"),
@@ -148,6 +151,54 @@ def test_a_hostile_unit_is_data(client, written):
 def test_a_quantity_that_breaks_the_contract(client, written, code, place):
     response = post(client, TABLE, changed(SHIFT, feed__flows__CO=written))
     assert_refused(response, 400, code, place)
+
+
+@pytest.mark.parametrize(
+    ("written", "place"),
+    [
+        ("1e16 kmol/h", "/feed/flows/CO"),
+        ({"value": 5e-324, "unit": "kmol/h"}, "/feed/flows/CO"),
+        ({"value": 1, "unit": "kmol/h", "u": "1e20 kmol/h"}, "/feed/flows/CO/u"),
+    ],
+)
+def test_a_size_beyond_anything_measured_is_refused(client, written, place):
+    response = post(client, TABLE, changed(SHIFT, feed__flows__CO=written))
+    assert_refused(response, 422, "impossible-value", place)
+
+
+@pytest.mark.parametrize(
+    "name", ["{found.x}", "{found[x]}", "{found:>9999999}", "{found}", "}", "{"]
+)
+def test_braces_in_a_name_are_text(client, name):
+    request = {
+        "species": {name: {"molar_mass": "1 g/mol"}, "B": {"molar_mass": "1 g/mol"}},
+        "reactions": [f"{name} -> B"],
+        "key": name,
+        "feed": {"phase": "gas", "flows": {name: "1 mol/s"}},
+        "conversions": [2],
+    }
+    response = post(client, TABLE, request)
+    fault = assert_refused(response, 422, "conversion-out-of-reach", "/conversions/0")
+    assert len(fault["detail"]) < 300
+    assert name.startswith("{found}") or name in fault["detail"]
+
+
+def test_a_member_called_like_marshmallows_own_key_has_its_place(client):
+    assert_refused(post(client, TABLE, {**SHIFT, "_schema": 1}), 400, "unknown-field", "/_schema")
+    flows = {**SHIFT["feed"]["flows"], "_schema": "bad"}
+    response = post(client, TABLE, changed(SHIFT, feed__flows=flows))
+    assert_refused(response, 400, "not-a-quantity", "/feed/flows/_schema")
+
+
+def test_many_unknown_fields_take_no_time(client):
+    import time
+
+    request = {**SHIFT, **{f"k{i}": 1 for i in range(60000)}}
+    began = time.process_time()
+    response = client.post("/v1/stoichiometric-table", json=request)
+    # A hint for each took four seconds; without, what is left is reading and sorting.
+    assert time.process_time() - began < 2.0
+    assert response.get_json()["errors_total"] == 60000
 
 
 def test_names_with_slashes_have_pointers_that_lead_to_them(client):
