@@ -106,7 +106,7 @@ class Server:
 
 
 @contextlib.contextmanager
-def running(*options):
+def running(*options, **environment):
     """A server with these options, stopped at the end if the test has not done so."""
     with tempfile.TemporaryDirectory() as directory:
         log = Path(directory, "log")
@@ -114,7 +114,8 @@ def running(*options):
             process = subprocess.Popen(
                 [sys.executable, "-m", "service", "serve", "--port", "0", *options],
                 cwd=PROJECT,
-                env={k: v for k, v in os.environ.items() if not k.startswith("MOLWRIGHT_")},
+                env={k: v for k, v in os.environ.items() if not k.startswith("MOLWRIGHT_")}
+                | environment,
                 stdin=subprocess.DEVNULL,
                 stdout=stdout,
                 stderr=stderr,

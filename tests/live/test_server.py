@@ -72,6 +72,12 @@ def test_an_unknown_route_is_a_problem_and_its_path_is_not_logged(server):
     assert "/no/such/route" not in str(line)
 
 
+def test_the_log_says_which_route_refused_the_method(server):
+    assert server.request("PUT", f"{PATH}?x=1", headers={"X-Request-ID": "put.1"}).status == 405
+    line = server.logged("put.1")
+    assert (line["route"], line["code"]) == (PATH, "method-not-allowed")
+
+
 HEAD = f"POST {PATH} HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n".encode()
 
 
@@ -127,11 +133,111 @@ def test_a_body_that_is_too_large_is_refused(start_server):
             answer = server.raw(HEAD + declared)
             assert answer.status == 413
             assert answer.problem()["type"] == "/problems/body-too-large"
+            assert answer.headers["Connection"] == "close"
         assert server.post(PATH, b" " * 100_000).status == 413
         chunk = b"190\r\n" + b" " * 0x190 + b"\r\n"
         chunked = HEAD + b"Transfer-Encoding: chunked\r\n\r\n" + 3 * chunk + b"0\r\n\r\n"
         assert server.raw(chunked).status == 413
         assert server.post(PATH, b" " * 1000).status == 400
+
+
+@pytest.mark.parametrize(
+    ("path", "size", "status"),
+    [(PATH, 17_000_000, 413), ("/v1/nothing", 5_000_000, 404), (f"{PATH}?x=1", 5_000_000, 400)],
+)
+def test_a_refusal_reaches_a_client_that_is_still_sending(server, path, size, status):
+    for _ in range(3):
+        answer = server.post(path, b" " * size)
+        assert answer.status == status
+        assert answer.headers["Connection"] == "close"
+        answer.problem()
+
+
+def test_a_connection_outlives_refusals_of_what_was_read(server):
+    connection = http.client.HTTPConnection(*server.address, timeout=30)
+    with contextlib.closing(connection):
+        for body in (b"{}", b"not JSON", b"[" * 100_000):
+            connection.request("POST", PATH, body, {"Content-Type": "application/json"})
+            answer = connection.getresponse()
+            assert answer.status == 400
+            assert answer.headers["Connection"] == "keep-alive"
+            answer.read()
+
+
+def test_nothing_is_believed_of_the_way_a_request_came(start_server):
+    everything = {
+        "FORWARDED_ALLOW_IPS": "*",
+        "SCRIPT_NAME": "/elsewhere",
+        "WEB_CONCURRENCY": "none at all",
+        "PORT": "1",
+    }
+    with start_server("--workers", "1", **everything) as server:
+        said = {"SCRIPT_NAME": "/healthz", "Script-Name": "/x", "X-Forwarded-Proto": "https"}
+        assert server.get("/healthz", **said, PATH_INFO="/readyz").json() == {"status": "alive"}
+        assert server.get("/elsewhere/healthz").status == 404
+        assert server.url in server.get("/", **said).json()["try"]
+
+
+@pytest.mark.parametrize(
+    "target", [b"http://here", b"http://here?pretty=1", b"/?pretty=1", b"http://here/"]
+)
+def test_every_way_to_ask_for_the_root(server, target):
+    answer = server.raw(b"GET " + target + b" HTTP/1.1\r\nHost: here\r\n\r\n")
+    assert answer.status == 200
+    assert answer.json()["service"] == "Molwright"
+
+
+def test_no_target_is_sent_elsewhere_in_html(server):
+    for target in (
+        b"*",
+        b"//",
+        b"/%2e%2e",
+        b"//x/..",
+        b"/v1",
+        b"/problems/",
+        b"/healthz/",
+        b"/%ff",
+    ):
+        answer = server.raw(b"GET " + target + b" HTTP/1.1\r\nHost: here\r\n\r\n")
+        assert answer.status in (200, 400, 404)
+        assert "json" in answer.headers["Content-Type"]
+
+
+@pytest.mark.parametrize(
+    "host",
+    [None, b"", b"a b", b"a'b", b"<script>", "\u00fc".encode(), b"a" * 70, b"[", b"a..b", b"@"],
+)
+def test_an_odd_host_is_no_fault_of_ours(server, host):
+    head = b"" if host is None else b"Host: " + host + b"\r\n"
+    answer = server.raw(b"GET / HTTP/1.1\r\n" + head + b"\r\n")
+    assert answer.status in (200, 400)
+    if answer.status == 200 and host not in (b"a..b", b"["):
+        assert f"'{server.url}/v1/" in answer.json()["try"]
+
+
+def test_whatever_is_asked_for_a_log_quotes_no_request(start_server):
+    with start_server("--workers", "1", "--log-level", "DEBUG") as server:
+        for path in ("/secret", "/secret?secret=1", f"{PATH}?secret=1", "/problems/secret"):
+            server.post(path, b'"secret"', **{"X-Secret": "secret", "SCRIPT_NAME": "/secret"})
+        server.post(PATH, {"secret": "secret"}, **{"X-Request-ID": "secret secret"})
+        for broken in (
+            b"SECRET /secret HTTP/9.9\r\n\r\n",
+            b"GET /secret HTTP/1.1\r\nsecret : secret\r\n\r\n",
+            b"GET /secret HTTP/1.1\r\nHost: secret\r\nHost: secret\r\n\r\n",
+            HEAD + b"Content-Length: secret\r\n\r\n",
+            HEAD + b"Transfer-Encoding: chunked\r\n\r\nsecret\r\n",
+            HEAD + b"Expect: secret\r\n\r\n",
+        ):
+            assert server.raw(broken).status < 500
+        for cut in (b"GET /secret HT", b"GET /secret HTTP/1.1\r\nsecret: sec", HEAD + b"\r\n"):
+            with server.connect() as sock:
+                sock.sendall(cut)
+                sock.shutdown(socket.SHUT_WR)
+                sock.recv(65536)
+        assert server.get("/healthz", **{"X-Request-ID": "last"}).status == 200
+        text = "\n".join(str(line) for line in server.log_lines())
+    assert "'last'" in text
+    assert "secret" not in text.lower().replace("'method': 'secret'", "")
 
 
 def asking(server, stop, answers):
@@ -179,6 +285,40 @@ def test_a_stop_finishes_what_is_under_way(start_server):
         assert server.logged("last")["status"] == 400
         with pytest.raises(ConnectionRefusedError):
             server.connect()
+
+
+@pytest.mark.parametrize(
+    ("number", "said"),
+    [(signal.SIGINT, HEAD + b"Content-Length: 2\r\n\r\n{"), (signal.SIGQUIT, b"")],
+)
+def test_an_interrupt_waits_for_no_client(start_server, number, said):
+    with start_server("--workers", "2") as server, server.connect() as sock:
+        sock.sendall(said)
+        time.sleep(0.3)  # its thread waits for more
+        began = time.monotonic()
+        server.signal(number)
+        assert server.exit_code() == 0
+        assert time.monotonic() - began < 3
+
+
+def test_an_interrupt_in_the_middle_of_traffic_is_heard(start_server):
+    for _ in range(2):
+        with start_server("--workers", "2") as server:
+            stop, answers = threading.Event(), []
+            askers = [
+                threading.Thread(target=asking, args=(server, stop, answers)) for _ in range(4)
+            ]
+            for asker in askers:
+                asker.start()
+            time.sleep(0.3)
+            began = time.monotonic()
+            server.signal(signal.SIGINT)
+            assert server.exit_code() == 0
+            assert time.monotonic() - began < 3
+            stop.set()
+            for asker in askers:
+                asker.join()
+            assert answers.count(200) > 10
 
 
 def test_slow_clients_do_not_keep_good_ones_waiting(start_server):
