@@ -2,14 +2,16 @@
 FROM python:3.11-slim AS build
 WORKDIR /build
 ENV PIP_DISABLE_PIP_VERSION_CHECK=1
-RUN python -m venv --without-pip /opt/molwright
-COPY requirements.lock ./
-RUN pip --python /opt/molwright/bin/python install --no-cache-dir --require-hashes -r requirements.lock
+RUN python -m venv --without-pip /opt/backend \
+    && python -m venv --without-pip /opt/molwright
+COPY requirements.lock requirements-build.lock ./
+RUN pip --python /opt/backend/bin/python install --no-cache-dir --require-hashes -r requirements-build.lock \
+    && pip --python /opt/molwright/bin/python install --no-cache-dir --require-hashes -r requirements.lock
 COPY pyproject.toml README.md LICENSE ./
 COPY core ./core
 COPY schemas ./schemas
 COPY service ./service
-RUN pip wheel --no-cache-dir --no-deps --wheel-dir wheels . \
+RUN pip --python /opt/backend/bin/python wheel --no-cache-dir --no-deps --no-build-isolation --wheel-dir wheels . \
     && pip --python /opt/molwright/bin/python install --no-cache-dir --no-deps wheels/*.whl
 
 # Run: the environment alone. Nothing is written outside /tmp and /dev/shm.
@@ -20,10 +22,11 @@ ENV PATH=/opt/molwright/bin:$PATH \
     PYTHONDONTWRITEBYTECODE=1 \
     OPENBLAS_NUM_THREADS=1 \
     OMP_NUM_THREADS=1 \
+    MOLWRIGHT_HOST=0.0.0.0 \
     MOLWRIGHT_PORT=8410
 WORKDIR /tmp
 USER 1000:1000
 EXPOSE 8410
 HEALTHCHECK --interval=10s --timeout=5s --start-period=30s \
     CMD ["python", "-c", "import os, urllib.request; urllib.request.urlopen(f'http://127.0.0.1:{os.environ[\"MOLWRIGHT_PORT\"]}/healthz', timeout=4)"]
-CMD ["molwright", "serve", "--host", "0.0.0.0"]
+CMD ["molwright", "serve"]

@@ -16,6 +16,7 @@ import subprocess
 import sys
 import tempfile
 import time
+import tomllib
 from dataclasses import dataclass, field
 from pathlib import Path
 
@@ -250,6 +251,12 @@ def reachable_python():
     pytest.skip(f"no Python 3.11 on this machine that user {USER} may start")
 
 
+def test_the_back_end_that_builds_is_locked_at_the_version_that_is_required():
+    project = tomllib.loads((PROJECT / "pyproject.toml").read_text())
+    locked = re.findall(r"^\S+==\S+", (PROJECT / "requirements-build.lock").read_text(), re.M)
+    assert locked == project["build-system"]["requires"]
+
+
 def test_hadolint_finds_nothing():
     done = subprocess.run(
         [Path(sys.executable).with_name("hadolint"), PROJECT / "Dockerfile"],
@@ -265,15 +272,17 @@ def test_what_the_dockerfile_builds_starts_answers_and_stops(place):
     assert image.user == f"{USER}:{USER}"
     assert image.env["OPENBLAS_NUM_THREADS"] == image.env["OMP_NUM_THREADS"] == "1"
     before = image.files()
+    notices = {path.name for path in before if "licenses" in path.parts}
+    assert {"LICENSE", *(path.name for path in PROJECT.rglob("core/**/*.NOTICE.txt"))} <= notices
 
     everywhere = "0.0.0.0"  # noqa: S104 - what a container has to listen on; here loopback will do
-    assert everywhere in image.command, "nobody outside the container would reach it"
-    command = ["127.0.0.1" if word == everywhere else word for word in image.command]
+    assert image.env["MOLWRIGHT_HOST"] == everywhere, "nobody outside would reach it"
+    image.env["MOLWRIGHT_HOST"] = "127.0.0.1"
     with socket.socket() as free:
         free.bind(("127.0.0.1", 0))
         image.env["MOLWRIGHT_PORT"] = str(free.getsockname()[1])
     with open(place / "log", "wb") as log:
-        server = image.start(command, stdout=log, stderr=subprocess.STDOUT)
+        server = image.start(image.command, stdout=log, stderr=subprocess.STDOUT)
     try:
         deadline = time.monotonic() + 30
         healthy = False
