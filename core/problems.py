@@ -97,11 +97,13 @@ _HTTP: dict[str, Entry] = {
     ),
     "unsupported-media-type": Entry(
         "Body not declared as JSON",
-        "Calculations take JSON. Send the header 'Content-Type: application/json'.",
+        "Calculations take JSON in UTF-8, uncompressed. Send the header 'Content-Type:"
+        " application/json', and no Content-Encoding.",
     ),
     "body-too-large": Entry(
         "Body too large",
-        "The body is larger than this service reads. Split the request.",
+        "The body is larger than this service reads. Split the request, or start the service with"
+        " a larger --max-body.",
     ),
     "malformed-http": Entry(
         "Malformed HTTP",
@@ -798,6 +800,3 @@ NOTES: dict[str, Entry] = {
 
 BREAKS_CONTRACT = frozenset(_READING_A_REQUEST)
 """Codes of a request that could not be read: the caller's programming error."""
-
-CARRIED_BY_HTTP = frozenset(_HTTP)
-"""Codes that HTTP has a status of its own for."""
