@@ -1,8 +1,8 @@
 """What the fractions of an analysis add up to, and whether they can be right.
 
-Ranges, not numbers: a limit may stand for anything up to, or from, its value,
-a lump of several substances for anything between their weights, a missing
-reading for anything.
+Ranges, not numbers: a non-detect may stand for anything up to its limit, a lump
+of several substances for anything between their weights, a missing reading or
+one off scale for anything.
 """
 
 from __future__ import annotations
@@ -14,7 +14,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault
-from core.outlet_analysis.readings import ABOVE, BELOW, FRACTIONS, Readings, ReadingWriter
+from core.outlet_analysis.readings import ABOVE, FRACTIONS, Readings, ReadingWriter
 from core.streams.metered import Analysis
 
 LEAST, MOST = 0.95, 1.05
@@ -88,7 +88,8 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
         there = np.isfinite(value)
         least = value / np.array([max(each.values()) for each in weights])
         most = value / np.array([min(each.values()) for each in weights])
-        least = np.where(there & (bound != BELOW), least, 0.0)
+        # What is off scale may be a wrong limit: it is held against the account instead.
+        least = np.where(there & (bound == 0), least, 0.0)
         most = np.where(there & (bound != ABOVE), most, np.inf)
         u = np.where(there & (bound == 0), readings.u[:, place], 0.0)
         left = _left_of_removed(analysis, least, most, weights, writer.masses)

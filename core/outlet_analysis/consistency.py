@@ -9,10 +9,12 @@ detectable error).
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from itertools import islice, product
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.special import chdtri, ndtri
 
 from core.arrays import BoolArray, FloatArray
@@ -24,6 +26,7 @@ from core.outlet_analysis.gauss_newton import (
     curvature,
     least_squares,
 )
+from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.solving import Fitted
 
 LEVEL = 0.05
@@ -33,25 +36,71 @@ DETECTABLE = float(ndtri(1 - 0.05 / 2) + ndtri(1 - 0.10))
 NO_REDUNDANCY = 1e-9
 NO_REDUNDANCY_BESIDE_LIMITS = 1e-5
 """Redundancy below which a reading is checked by nothing but rounding, or by limits let loose."""
+SUSPICIOUS = 1e-3
+"""Redundancy below which a reading is not suspected: it would have to err out of all proportion."""
 PARALLEL = 1 - 1e-6
 """Correlation of two residuals from which on no reading tells which of the two errs."""
 LOOSE = 1e-8
 """Weight left to a limit where the readings proper are tested."""
+CONTRADICTED = 2.0
+"""Distance beyond a limit, in standard uncertainties of what the readings proper say, that
+contradicts it."""
 MOST_ALTERNATIVES = 24
+MOST_PAIRS = 64
 
 
 @dataclass(frozen=True, eq=False)
 class WithoutSuspects:
-    """The account with suspect readings left out: one way to choose among each set."""
+    """The account with suspect readings left out: one way to have the rest agree."""
 
     removed: tuple[int, ...]
     z: FloatArray
     covariance: FloatArray
+    chi_square: float
+
+
+@dataclass(frozen=True, eq=False)
+class Stated:
+    """What is stated of the readings beside their values; N samples, m' readings.
+
+    Attributes
+    ----------
+    u : ndarray, shape (N, m')
+    bound : ndarray of int8, shape (N, m')
+        ``BELOW`` or ``ABOVE`` of a limit that the account can be held against, else 0.
+    limit : ndarray, shape (N, m')
+    """
+
+    u: FloatArray
+    bound: NDArray[np.int8]
+    limit: FloatArray
+
+    def samples(self, rows: BoolArray | IntArray) -> Stated:
+        """Return those of the samples marked."""
+        return Stated(self.u[rows], self.bound[rows], self.limit[rows])
 
 
 @dataclass(frozen=True, eq=False)
 class Examined:
-    """Readings against a solution, the limits let loose; N samples, m' readings."""
+    """Readings against a solution, the limits let loose; N samples, m' readings.
+
+    Attributes
+    ----------
+    curvature : Curvature
+        With the limits.
+    value : ndarray, shape (N, m')
+        What the account makes of each reading, with the limits.
+    loose : Curvature
+        Without them, where the readings proper alone have it come to rest.
+    standardised : ndarray, shape (N, m')
+    testable : ndarray of bool, shape (N, m')
+    chi_square, limit : ndarray, shape (N,)
+    freedom : ndarray of int, shape (N,)
+    failing : ndarray of bool, shape (N,)
+        The readings proper contradict each other.
+    contradicted : ndarray of bool, shape (N, m')
+        Limits that they contradict.
+    """
 
     curvature: Curvature
     value: FloatArray
@@ -62,6 +111,12 @@ class Examined:
     freedom: IntArray
     limit: FloatArray
     failing: BoolArray
+    contradicted: BoolArray
+
+    @property
+    def doubtful(self) -> BoolArray:
+        """Something contradicts something, shape (N,)."""
+        return np.asarray(self.failing | self.contradicted.any(axis=1))
 
     def samples(self, rows: BoolArray) -> Examined:
         """Return those of the samples marked."""
@@ -75,30 +130,34 @@ class Examined:
             self.freedom[rows],
             self.limit[rows],
             self.failing[rows],
+            self.contradicted[rows],
         )
 
 
-def examine(
-    fit: Fit, z: FloatArray, natural: FloatArray, u: FloatArray, limits: BoolArray
-) -> Examined:
-    """Test the readings proper: soft or nearly exact, those of ``limits`` (N, m') let loose."""
+def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Examined:
+    """Test the readings proper, soft or nearly exact, with the limits let loose."""
     at_solution = curvature(fit, z, natural)
     value = fit.forms.at(at_solution.z).value
     weight = np.array(fit.weight)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
     weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
+    limited = stated.bound != 0
+    contradicted = np.zeros_like(limited)
     loose = at_solution
     least = np.full((len(z), 1), NO_REDUNDANCY)
-    if limits.any():
-        let_go = replace(fit, weight=np.where(limits, LOOSE * fit.weight, fit.weight))
-        loose = curvature(let_go, z, natural)
-        least[limits.any(axis=1)] = NO_REDUNDANCY_BESIDE_LIMITS
+    if limited.any():
+        loose = _let_loose(fit, at_solution.z, natural, stated)
+        least[(stated.bound == BELOW).any(axis=1)] = NO_REDUNDANCY_BESIDE_LIMITS
+        beyond = (fit.measured - loose.residual - stated.limit) * -stated.bound
+        spread = np.sqrt(loose.variance)
+        doubt = np.maximum(CONTRADICTED * spread, 1e-9 * np.abs(stated.limit))
+        contradicted = limited & (beyond > doubt)
     residual = loose.residual
-    proper = (weight > 0) & ~limits
+    proper = (weight > 0) & ~limited
     redundancy = np.where(proper, loose.redundancy, 0.0)
     rounding = 1e-15 * loose.inflation[:, None]
     testable = proper & (loose.control > np.maximum(least, rounding)) & (redundancy > 0)
-    scale = u * np.sqrt(np.where(testable, redundancy, 1.0))
+    scale = stated.u * np.sqrt(np.where(testable, redundancy, 1.0))
     standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
     chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
     # A singular sample has no number here; it is refused for its inflation.
@@ -109,8 +168,29 @@ def examine(
     largest = np.where(testable, np.abs(standardised), 0.0).max(axis=1, initial=0.0)
     failing = (freedom > 0) & ((chi_square > limit) | (largest > sidak_limit(tests)))
     return Examined(
-        at_solution, value, loose, standardised, testable, chi_square, freedom, limit, failing
+        at_solution,
+        value,
+        loose,
+        standardised,
+        testable,
+        chi_square,
+        freedom,
+        limit,
+        failing,
+        contradicted,
     )
+
+
+def _let_loose(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Curvature:
+    """Where the readings proper alone have the account come to rest."""
+    below = stated.bound == BELOW
+    rows = below.any(axis=1)
+    let_go = replace(fit, weight=np.where(below, LOOSE * fit.weight, fit.weight))
+    if rows.any():
+        solution = least_squares(let_go.samples(rows), z[rows], natural[rows])
+        z = np.array(z)
+        z[rows] = np.where(solution.converged[:, None], solution.z, z[rows])
+    return curvature(let_go, z, natural)
 
 
 def sidak_limit(tests: IntArray) -> FloatArray:
@@ -135,54 +215,114 @@ def _drop(fit: Fit, readings: IntArray) -> Fit:
 
 
 def suspects(
-    fitted: Fitted, seen: Examined, u: FloatArray, limits: BoolArray, m: int
+    fitted: Fitted, seen: Examined, stated: Stated, m: int
 ) -> tuple[IntArray, list[list[list[int]]]]:
     """Serial elimination: leave out the worst reading until the rest agree.
 
-    Returns the number of the set that each reading is in, shape (N, m), and
-    for each sample its sets.
+    A limit that the rest then contradict is left out at the end. Returns the
+    number of the set that each reading is in, shape (N, m), and for each
+    sample its sets, in each the reading first that need err the least.
     """
-    rows = np.flatnonzero(seen.failing)
+    rows = np.flatnonzero(seen.doubtful)
     sets = np.zeros((len(seen.failing), m), dtype=np.intp)
     chosen: list[list[list[int]]] = [[] for _ in seen.failing]
-    fit = fitted.fit.samples(seen.failing)
-    z, natural = fitted.z[rows], fitted.natural[rows]
-    limits, u = limits[rows], u[rows]
-    part = seen.samples(seen.failing)
+    fit = fitted.fit.samples(seen.doubtful)
+    z, natural, stated = fitted.z[rows], fitted.natural[rows], stated.samples(rows)
+    part = seen.samples(seen.doubtful)
     while len(rows):
-        members = _cannot_be_told_apart(part, u)
+        members = _cannot_be_told_apart(part, stated) & part.failing[:, None]
+        going: BoolArray = np.asarray(members.any(axis=1))
+        # Of equal tests the least error over u is that of the largest redundancy.
+        order = np.argsort(np.where(members, -part.loose.redundancy, np.inf), axis=1, kind="stable")
         for k, row in enumerate(rows.tolist()):
-            chosen[row].append(np.flatnonzero(members[k]).tolist())
-            sets[row, np.flatnonzero(members[k])] = len(chosen[row])
-        fit = _drop(fit, members.argmax(axis=1))
-        solution = least_squares(fit, z, natural)
-        examined = examine(fit, solution.z, natural, u, limits)
-        again = examined.failing & solution.converged
+            if going[k]:
+                chosen[row].append(order[k, : members[k].sum()].tolist())
+            else:
+                chosen[row] += [[limit] for limit in np.flatnonzero(part.contradicted[k]).tolist()]
+        fit = _drop(fit.samples(going), order[going, 0])
+        rows, natural, stated = rows[going], natural[going], stated.samples(going)
+        solution = least_squares(fit, z[going], natural)
+        examined = examine(fit, solution.z, natural, stated)
+        again = examined.doubtful & solution.converged
         rows, fit, natural = rows[again], fit.samples(again), natural[again]
-        z, limits, u = solution.z[again], limits[again], u[again]
+        z, stated = solution.z[again], stated.samples(again)
         part = examined.samples(again)
+    for row, found in enumerate(chosen):
+        for number, members_ in enumerate(found):
+            sets[row, members_] = number + 1
     return sets, chosen
 
 
-def _cannot_be_told_apart(seen: Examined, u: FloatArray) -> BoolArray:
+def _cannot_be_told_apart(seen: Examined, stated: Stated) -> BoolArray:
     """Mark the reading with the largest test and those whose residual runs parallel to its own."""
-    sample = np.arange(len(u))
-    size = np.where(seen.testable, np.abs(seen.standardised), -1.0)
+    sample = np.arange(len(stated.u))
+    candidates = seen.testable & (seen.loose.redundancy >= SUSPICIOUS)
+    size = np.where(candidates, np.abs(seen.standardised), -1.0)
     worst = size.argmax(axis=1)
     slopes = seen.loose.slopes
     along = slopes[sample, worst][:, None, :] @ seen.loose.covariance
     common = (along @ slopes.transpose(0, 2, 1))[:, 0, :]
     # The covariance of two residuals is minus that of the fitted values.
-    spread = np.where(seen.testable, u * np.sqrt(seen.loose.redundancy), np.inf)
+    spread = np.where(candidates, stated.u * np.sqrt(seen.loose.redundancy), np.inf)
     correlation = np.abs(common) / (spread * spread[sample, worst][:, None])
-    members = seen.testable & (correlation > PARALLEL)
-    members[sample, worst] = True
+    members = candidates & (correlation > PARALLEL)
+    members[sample, worst] = candidates[sample, worst]
     return np.asarray(members)
 
 
-def without_suspects(fitted: Fitted, sets: list[list[int]]) -> tuple[WithoutSuspects, ...]:
-    """Fit a single sample anew for each way to leave out one reading of every set."""
-    ways = list(islice(product(*sets), MOST_ALTERNATIVES))
+@dataclass(frozen=True, eq=False)
+class _Way:
+    """An account with readings left out, and whether the rest agree."""
+
+    found: WithoutSuspects
+    restored: bool
+
+
+def without_suspects(
+    fitted: Fitted, seen: Examined, stated: Stated, sets: list[list[int]]
+) -> tuple[tuple[WithoutSuspects, ...], int]:
+    """Fit a single sample anew for each way to have its readings agree.
+
+    First stands the way that serial elimination took. After it come all other
+    single readings without which the rest agree, by what chi-square is then;
+    where no single one does, pairs; where no pair does, other choices from
+    the sets that cannot be told apart. Returns no more than
+    ``MOST_ALTERNATIVES`` ways, and how many were found.
+    """
+    limits = tuple(np.flatnonzero(seen.contradicted[0]).tolist())
+    first = tuple(members[0] for members in sets)
+    redundancy = np.maximum(seen.loose.redundancy[0], seen.curvature.redundancy[0])
+    proper = stated.bound[0] == 0
+    candidates = np.flatnonzero(proper & (redundancy >= SUSPICIOUS)).tolist()
+    singles = [(k,) for k in candidates]
+    beside = [(k, *limits) for k in candidates] if limits and seen.failing[0] else []
+
+    def refitted(ways: Iterable[tuple[int, ...]]) -> list[_Way]:
+        others = [way for way in dict.fromkeys(ways) if set(way) != set(first)]
+        return _refit(fitted, seen, stated, others)
+
+    start = _refit(fitted, seen, stated, [first] if first else [])
+    alone = refitted(singles)
+    enough = {way.found.removed[0] for way in alone if way.restored}
+    alone += refitted(way for way in beside if way[0] not in enough)
+    others = [way.found for way in alone if way.restored]
+    if not others and not (len(set(first) - set(limits)) <= 1 and start and start[0].restored):
+        pairs = _likely_pairs(seen, stated, candidates)
+        others = [way.found for way in refitted(pairs) if way.restored]
+        if not others:
+            products = islice(product(*sets), MOST_ALTERNATIVES)
+            others = [way.found for way in refitted(products)]
+    others.sort(key=lambda way: way.chi_square)
+    found = [*(way.found for way in start), *others]
+    return tuple(found[:MOST_ALTERNATIVES]), len(found)
+
+
+def _refit(
+    fitted: Fitted, seen: Examined, stated: Stated, ways: list[tuple[int, ...]]
+) -> list[_Way]:
+    """Fit a single sample for each set of readings to leave out; those that fail are not there."""
+    if not ways:
+        return []
     copies = np.zeros(len(ways), dtype=np.intp)
     fit = Fit(
         fitted.fit.forms.samples(copies),
@@ -191,13 +331,45 @@ def without_suspects(fitted: Fitted, sets: list[list[int]]) -> tuple[WithoutSusp
         fitted.fit.stiff,
         fitted.fit.compliance[copies],
     )
-    for k in range(len(sets)):
-        fit = _drop(fit, np.array([way[k] for way in ways], dtype=np.intp))
+    bound = np.array(stated.bound[copies])
+    for k in range(max(map(len, ways))):
+        readings = np.array([way[k] if k < len(way) else -1 for way in ways], dtype=np.intp)
+        fit = _drop(fit, readings)
+        there = np.flatnonzero(readings >= 0)
+        bound[there, readings[there]] = 0
     natural = fitted.natural[copies]
     solution = least_squares(fit, fitted.z[copies], natural)
-    bent = curvature(fit, solution.z, natural)
-    return tuple(
-        WithoutSuspects(way, bent.z[k], bent.covariance[k])
-        for k, way in enumerate(ways)
-        if solution.converged[k] and bent.inflation[k] < SINGULAR
-    )
+    of = examine(fit, solution.z, natural, replace(stated.samples(copies), bound=bound))
+    agrees = (of.freedom == 0) | (of.chi_square <= of.limit)
+    if not seen.chi_square[0] > seen.limit[0]:
+        agrees &= ~of.failing
+    agrees &= ~of.contradicted.any(axis=1)
+    sound = solution.converged & (of.curvature.inflation < SINGULAR)
+    return [
+        _Way(
+            WithoutSuspects(
+                ways[k], of.curvature.z[k], of.curvature.covariance[k], float(of.chi_square[k])
+            ),
+            bool(agrees[k]),
+        )
+        for k in np.flatnonzero(sound).tolist()
+    ]
+
+
+def _likely_pairs(seen: Examined, stated: Stated, candidates: list[int]) -> list[tuple[int, ...]]:
+    """Pairs of readings without which chi-square would be least, as far as slopes tell."""
+    k = np.array(candidates, dtype=np.intp)
+    slopes = seen.loose.slopes[0, k]
+    of = -(slopes @ seen.loose.covariance[0] @ slopes.T)
+    own = stated.u[0, k] ** 2 * seen.loose.redundancy[0, k]
+    residual = seen.loose.residual[0, k]
+    i, j = np.triu_indices(len(k), 1)
+    determinant = own[i] * own[j] - of[i, j] ** 2
+    apart = determinant > (1 - PARALLEL) * own[i] * own[j]
+    fall = (
+        own[j] * residual[i] ** 2
+        + own[i] * residual[j] ** 2
+        - 2 * of[i, j] * residual[i] * residual[j]
+    ) / np.where(apart, determinant, 1.0)
+    order = np.argsort(np.where(apart, -fall, np.inf), kind="stable")[:MOST_PAIRS]
+    return [(candidates[i[p]], candidates[j[p]]) for p in order.tolist() if apart[p]]

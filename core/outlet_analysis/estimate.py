@@ -44,6 +44,9 @@ class ReadingTable:
         one of which errs; 0 where nothing is suspected.
     within_limit : ndarray of int8, shape (..., m)
         1 within, 0 beyond, -1 where there is no limit.
+    contradicted : ndarray of bool, shape (..., m)
+        A limit beyond which the readings proper put the value, by more than
+        twice the uncertainty that they leave it.
     """
 
     subjects: tuple[Subject, ...]
@@ -57,6 +60,7 @@ class ReadingTable:
     smallest_detectable_error: FloatArray
     suspect_set: IntArray
     within_limit: NDArray[np.int8]
+    contradicted: BoolArray
 
 
 @dataclass(frozen=True, eq=False)
@@ -79,7 +83,7 @@ class Estimate:
         probability of a larger one; the last two absent without redundancy.
     degrees_of_freedom : ndarray of int, shape (...)
     inconsistent : ndarray of bool, shape (...)
-        chi_square is above its limit.
+        chi_square is above its limit, or a limit is contradicted.
     per_mole_of_key : ndarray of bool, shape (...)
         No reading tells how much flows: flows are per mole of key fed.
     told : ndarray of bool, shape (..., n)
@@ -91,8 +95,11 @@ class Estimate:
     inflation : ndarray, shape (...)
         Largest inflation of a variance by what the readings fail to tell apart.
     without_suspects : tuple of WithoutSuspects
-        Of a single sample with suspects: the account without them, one for
-        each choice among readings that cannot be told apart.
+        Of a single sample with suspects: the account without them, then every
+        other way to leave out as few readings and have the rest agree, as far
+        as there is room.
+    ways : int
+        How many such ways were found.
     failed : Mapping of int to Fault
         By sample, counted from the first of this estimate.
     first : int
@@ -114,6 +121,7 @@ class Estimate:
     absent: BoolArray
     inflation: FloatArray
     without_suspects: tuple[WithoutSuspects, ...] = ()
+    ways: int = 0
     failed: Mapping[int, Fault] = field(default_factory=dict)
     first: int = 0
     notes: tuple[Note, ...] = ()

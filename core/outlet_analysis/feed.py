@@ -88,7 +88,7 @@ def known_feed(
     scaled = bool(found.per_mole_of_key)
     told = [note for note in found.notes if note.code != "no-redundancy"]
     told.extend(solids_taken_as_gas(reactions, conditions.phase))
-    if found.inconsistent:
+    if found.chi_square > found.limit:
         told.append(
             Note(
                 "readings-inconsistent",

@@ -188,7 +188,8 @@ def under_determined(
     z: FloatArray,
     natural: FloatArray,
     scaled: FloatArray,
-    missing: tuple[Subject, ...],
+    missing: tuple[Subject, ...] = (),
+    off_scale: tuple[Subject, ...] = (),
 ) -> Fault:
     """Say what the readings leave open, and the fewest further readings that would settle it.
 
@@ -202,6 +203,8 @@ def under_determined(
         no reading tells how much flows.
     missing : tuple of Subject
         Readings of the account that are missing from this sample.
+    off_scale : tuple of Subject
+        Those of which only a lower limit is known.
     """
     names = account.problem.reactions.names
     key = account.problem.key
@@ -254,6 +257,9 @@ def under_determined(
     if missing:
         detail += ". Missing here: {missing}"
         facts["missing"] = Readings(missing)
+    if off_scale:
+        detail += ". A value off scale bounds the account and settles nothing: {off_scale}"
+        facts["off_scale"] = Readings(off_scale)
     return Fault("under-determined", subject, detail, facts)
 
 

@@ -1,15 +1,16 @@
 """What goes into a fit: weights, exact readings, natural sizes and a first guess.
 
-Readings enter with weight 1/u^2. A limit enters as the mean and standard
-deviation of a rectangular distribution: of [0, limit] for a non-detect, of
-[limit, 1] for a fraction off scale (GUM, JCGM 100:2008, 4.3.7). A missing
-reading has no weight. Without any flow the key fed is 1 mol/s, exactly.
+Readings enter with weight 1/u^2. A non-detect enters as the mean and standard
+deviation of a rectangular distribution over [0, limit] (GUM, JCGM 100:2008,
+4.3.7). A value off scale has no weight: what lies above it is bounded by the
+account alone, which is held against the limit afterwards. Neither has a
+missing reading. Without any flow the key fed is 1 mol/s, exactly.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -46,6 +47,8 @@ class Block:
         What enters; limits as mean and standard deviation.
     active : ndarray of bool, shape (N, m + 1)
     bound : ndarray of int8, shape (N, m + 1)
+        0 also where the limit is missing.
+    limit : ndarray, shape (N, m + 1)
     nominal : ndarray, shape (N, n)
         A plausible value of each unknown.
     """
@@ -56,6 +59,7 @@ class Block:
     u: FloatArray
     active: BoolArray
     bound: NDArray[np.int8]
+    limit: FloatArray
     nominal: FloatArray
 
     @property
@@ -99,12 +103,13 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
     value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
     active = np.isfinite(value)
     measured, sigma = np.where(active, value, 0.0), np.where(active, u, 1.0)
+    limit = measured
     if bound.any():
-        below, above = bound == BELOW, bound == ABOVE
-        off_scale = above & readings.share
-        measured = np.where(below, value / 2, np.where(off_scale, (1 + value) / 2, measured))
-        sigma = np.where(below, value, np.where(off_scale, 1 - value, sigma * 12**0.5)) / 12**0.5
-        active &= ~above | off_scale
+        bound = np.where(active, bound, 0).astype(np.int8)
+        below = bound == BELOW
+        measured = np.where(below, value / 2, measured)
+        sigma = np.where(below, value / 12**0.5, sigma)
+        active &= bound != ABOVE
         measured, sigma = np.where(active, measured, 0.0), np.where(active, sigma, 1.0)
 
     sigma = np.where(sigma < SQUARE_UNDERFLOWS, 0.0, sigma)
@@ -115,6 +120,7 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
     sigma = np.concatenate([sigma, 0 * column], axis=1)
     active = np.concatenate([active, ~flowing[:, None]], axis=1)
     bound = np.concatenate([bound, np.zeros((len(bound), 1), dtype=np.int8)], axis=1)
+    limit = np.concatenate([limit, 0 * column], axis=1)
 
     forms = readings.forms.samples(rows).through(account.stream_map)
     constants = forms.constants
@@ -124,9 +130,9 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
         forms.bases,
         np.concatenate([forms.exponents, np.zeros((1, forms.exponents.shape[1]))]),
     )
-    block = Block(account, forms, measured, sigma, active, bound, np.empty(0))
+    block = Block(account, forms, measured, sigma, active, bound, limit, np.empty(0))
     per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
-    return Block(account, forms, measured, sigma, active, bound, _nominal(block, per_mole))
+    return replace(block, nominal=_nominal(block, per_mole))
 
 
 def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
@@ -219,6 +225,7 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
             block.u[rows],
             block.active[rows],
             block.bound[rows],
+            block.limit[rows],
             block.nominal[rows],
         )
     slopes, right, u = linearised(block)

@@ -15,13 +15,14 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.analysis_sums import sum_faults
 from core.outlet_analysis.consistency import (
     DETECTABLE,
     Examined,
+    Stated,
     WithoutSuspects,
     examine,
     suspects,
@@ -93,30 +94,27 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
     block = prepare(account, rows)
     readings = account.readings
     n, m, samples = len(account.unknowns), len(readings.subjects), len(block.measured)
-    limits = block.active & (block.bound != 0)
     out = _Results(samples, n, m)
     failed: dict[int, Fault] = {}
     without: tuple[WithoutSuspects, ...] = ()
+    ways = 0
     for outcome in fit_block(block, _reported(account)):
         if not isinstance(outcome, Fitted):
             failed.update((int(row), outcome[1]) for row in outcome[0])
             continue
         at, fit = outcome.rows, outcome.fit
-        u, loosened = block.u[at], limits[at]
-        held = fit.measured.shape[1] - m - 1
-        if held:
-            u = np.pad(u, ((0, 0), (0, held)))
-            loosened = np.pad(loosened, ((0, 0), (0, held)))
-        seen = examine(fit, outcome.z, outcome.natural, u, loosened)
+        stated, unknown = _stated(block, outcome)
+        seen = examine(fit, outcome.z, outcome.natural, stated)
         sets = np.zeros((len(at), m), dtype=np.intp)
-        if seen.failing.any():
-            sets, chosen = suspects(outcome, seen, u, loosened, m)
+        if seen.doubtful.any():
+            sets, chosen = suspects(outcome, seen, stated, m)
             if readings.samples is None:
-                without = without_suspects(outcome, chosen[0])
+                without, ways = without_suspects(outcome, seen, stated, chosen[0])
         out.fill(at, seen, sets, m)
         if outcome.directions.shape[1]:
             moved = np.linalg.norm(outcome.directions, axis=1)
             out.told[at] = moved <= TOUCHED * outcome.natural
+            out.hide(at, unknown[:, :m])
         if len(outcome.absent):
             out.leave_out(at, outcome.absent)
         for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
@@ -137,16 +135,37 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         p_value=np.where(
             out.freedom > 0, chdtrc(np.maximum(out.freedom, 1), out.chi_square), np.nan
         ),
-        inconsistent=out.chi_square > out.limit,
+        inconsistent=(out.chi_square > out.limit) | out.contradicted.any(axis=1),
         per_mole_of_key=block.active[:, m],
         told=out.told,
         absent=out.absent,
         inflation=out.inflation,
         without_suspects=without,
+        ways=ways,
         failed=failed,
         first=rows.start,
     )
     return replace(result, notes=tuple(remarks(result)))
+
+
+def _stated(block: Block, fitted: Fitted) -> tuple[Stated, BoolArray]:
+    """What is stated of the readings of a fit, and which of them it leaves open, (N, m')."""
+    at = fitted.rows
+    u, bound, limit = block.u[at], block.bound[at], block.limit[at]
+    held = fitted.fit.measured.shape[1] - u.shape[1]
+    if held:
+        more = ((0, 0), (0, held))
+        u, bound, limit = np.pad(u, more), np.pad(bound, more), np.pad(limit, more)
+    unknown = np.zeros(u.shape, dtype=bool)
+    if fitted.directions.shape[1]:
+        found = fitted.fit.forms.at(fitted.z)
+        slopes = fitted.fit.forms.jacobian(found)
+        length = np.linalg.norm(slopes * fitted.natural[:, None, :], axis=-1)
+        moved = np.linalg.norm(slopes @ fitted.directions, axis=-1)
+        unknown = moved > TOUCHED * length
+        unknown[:, u.shape[1] - held :] = False
+        bound = np.where(unknown, 0, bound).astype(np.int8)
+    return Stated(u, bound, limit), unknown
 
 
 def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> ReadingTable:
@@ -168,6 +187,7 @@ def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> 
         redundancy=redundancy,
         smallest_detectable_error=np.where(checked, detectable, np.nan),
         suspect_set=out.sets,
+        contradicted=out.contradicted,
         within_limit=np.where(known, inside, -1).astype(np.int8),
     )
 
@@ -187,6 +207,7 @@ class _Results:
         self.inflation = np.full(samples, np.nan)
         self.freedom = np.zeros(samples, dtype=np.intp)
         self.sets = np.zeros((samples, m), dtype=np.intp)
+        self.contradicted = np.zeros((samples, m), dtype=bool)
         self.told = np.ones((samples, n), dtype=bool)
         self.absent = np.zeros((samples, n), dtype=bool)
 
@@ -202,6 +223,12 @@ class _Results:
         self.inflation[at] = seen.curvature.inflation
         self.freedom[at] = seen.freedom
         self.sets[at] = sets
+        self.contradicted[at] = seen.contradicted[:, :m]
+
+    def hide(self, at: IntArray, unknown: BoolArray) -> None:
+        """Leave no number of readings, (N, m), that the others leave open."""
+        for array in (self.reconciled, self.reconciled_u):
+            array[at] = np.where(unknown, np.nan, array[at])
 
     def leave_out(self, at: IntArray, absent: IntArray) -> None:
         """Take unknown flows as nothing, exactly."""

@@ -76,18 +76,25 @@ def remarks(found: Estimate) -> Iterator[Note]:
     yield from _placement(account)
     yield from _below_zero(found, counted)
     yield from _backwards(found, counted)
-    if samples is None:
-        numbers = found.readings.suspect_set
-        sizes = np.bincount(numbers[numbers > 0], minlength=1)[1:]
-        ways, shown = int(np.prod(sizes)), len(found.without_suspects)
-        if len(sizes) and shown < ways:
-            yield Note(
-                "alternatives-not-all-given",
-                "of {ways} ways to leave out one reading of each set in doubt, {shown} are given;"
-                " the others are too many, or leave no account that comes near the readings",
-                subject=("reconciliation",),
-                facts={"ways": ways, "shown": shown},
-            )
+    if found.ways > len(found.without_suspects):
+        yield Note(
+            "alternatives-not-all-given",
+            "of {ways} ways to leave out readings so that the rest agree, {shown} are given: those"
+            " that leave the least chi-square",
+            subject=("reconciliation",),
+            facts={"ways": found.ways, "shown": len(found.without_suspects)},
+        )
+    for k in np.flatnonzero(found.readings.contradicted.any(axis=0)).tolist():
+        words, facts = counted(found.readings.contradicted[:, k])
+        yield Note(
+            "limit-contradicted",
+            "the other readings put this value beyond its limit by more than twice the uncertainty"
+            " that they leave it, and the limit, taken as true, overrules them: doubt the limit,"
+            " or them; see the answer without it" + words,
+            severity="warning",
+            subject=found.readings.subjects[k],
+            facts=facts,
+        )
     yield from _sum_notes(found, counted)
     yield from _removal_notes(found, counted)
 

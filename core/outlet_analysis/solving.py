@@ -176,9 +176,11 @@ def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault
     """Say what sample ``row`` of a block leaves open; ``z`` and ``natural`` are (1, n)."""
     active = block.active[row]
     scaled = equilibrated(block.forms.samples(slice(row, row + 1)), z, active[None], natural)[0]
-    subjects = block.account.readings.subjects
-    missing = tuple(s for s, there in zip(subjects, active, strict=False) if not there)
-    return under_determined(block.account, z[0], natural[0], scaled, missing)
+    subjects, bound = block.account.readings.subjects, block.bound[row]
+    silent = np.flatnonzero(~active[: len(subjects)]).tolist()
+    missing = tuple(subjects[k] for k in silent if not bound[k])
+    off_scale = tuple(subjects[k] for k in silent if bound[k])
+    return under_determined(block.account, z[0], natural[0], scaled, missing, off_scale)
 
 
 def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:

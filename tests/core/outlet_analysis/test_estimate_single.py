@@ -15,6 +15,7 @@ from core.errors import Readings, Refused
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.readings import Series
 from core.outlet_analysis.reconciliation import estimate, estimate_feed
 from core.substances.substance import Substance
 from tests.core.outlet_analysis.plant import (
@@ -30,6 +31,9 @@ from tests.core.outlet_analysis.plant import (
 
 SHIFT = reactions_of({"shift": "CO + H2O <=> CO2 + H2"}, list(SHIFT_FEED))
 FED: dict[str, Any] = {n: (f * KMOL_H, 0.01 * f * KMOL_H) for n, f in SHIFT_FEED.items()}
+
+
+CO = ("outlet", "analysis", "values", "CO")
 
 
 def shift(values: dict[str, Any], *, feed: dict[str, Any] | None = None, **more: Any) -> Any:
@@ -186,11 +190,18 @@ def test_off_scale() -> None:
     place = found.readings.subjects.index(("outlet", "analysis", "values", "H2"))
     assert found.readings.within_limit[place] == 1
     assert_allclose(conversion(found)[0], 0.74, atol=1e-4)
-    # Off scale alone is information too: rectangular between 0.5 and 1.
-    alone = estimate(shift({"H2": (0.5, 0.0, "above")}))
-    h2 = alone.readings.subjects.index(("outlet", "analysis", "values", "H2"))
-    assert_allclose(alone.readings.reconciled[h2], 0.75, rtol=1e-9)
-    assert_allclose(alone.readings.reconciled_u[h2], 0.5 / 12**0.5, rtol=1e-9)
+    # As much as without it: what lies above is bounded by the account alone.
+    assert_allclose(conversion(found), conversion(estimate(shift(without("H2")))), rtol=1e-12)
+
+
+def test_off_scale_alone_settles_nothing() -> None:
+    for name in ("CO", "H2"):
+        fault = fault_of(shift({name: (0.05, 0.0, "above")}))
+        assert fault.code == "under-determined"
+        assert "the conversion of CO" in str(fault)
+        assert "A value off scale bounds the account" in str(fault)
+        assert fault.facts["off_scale"].subjects == (("outlet", "analysis", "values", name),)
+        assert "missing" not in fault.facts
 
 
 def test_off_scale_flow_is_only_checked() -> None:
@@ -201,7 +212,97 @@ def test_off_scale_flow_is_only_checked() -> None:
     found = estimate(account(SHIFT, "CO", feed, outlet))
     place = found.readings.subjects.index(("feed", "flow"))
     assert found.readings.within_limit[place] == 0
+    assert found.readings.contradicted[place]
     assert_allclose(conversion(found), conversion(estimate(shift_problem())), rtol=1e-9)
+
+
+def contradicting(values: dict[str, Any]) -> tuple[Estimate, Any, list[tuple[set[Any], float]]]:
+    """An estimate, its notes on contradicted limits, and its ways: what is out, conversion."""
+    found = estimate(shift(values))
+    notes = [note for note in found.notes if note.code == "limit-contradicted"]
+    ways = [
+        ({"/".join(map(str, found.readings.subjects[k])) for k in removed}, float(x.value))
+        for removed, x in conversion_results(found).without_suspects
+    ]
+    return found, notes, ways
+
+
+@pytest.mark.parametrize(("limit", "bound"), [(0.0005, "below"), (0.15, "above")])
+def test_a_limit_that_good_readings_contradict(limit: float, bound: str) -> None:
+    found, (note,), ways = contradicting({**SHIFT_OUTLET, "CO": (limit, 0.0, bound)})
+    subject = ("outlet", "analysis", "values", "CO")
+    place = found.readings.subjects.index(subject)
+    assert note.subject == subject
+    assert note.severity == "warning"
+    assert found.inconsistent
+    assert found.chi_square < 0.01
+    assert found.readings.suspect_set[place] == 1
+    assert np.count_nonzero(found.readings.suspect_set) == 1
+    # Without it the account is that of the others, and no other reading alone explains it.
+    ((out, x),) = ways
+    assert out == {"outlet/analysis/values/CO"}
+    assert_allclose(x, 0.74, atol=1e-4)
+    plain = estimate(shift(without("CO")))
+    assert_allclose([x], [conversion(plain)[0]], rtol=1e-9)
+    if bound == "below":
+        assert conversion(found)[0] > 0.95
+
+
+def test_a_limit_against_one_reading_may_be_either() -> None:
+    found, _, ways = contradicting({"CO": (0.0005, 0.0, "below"), "CO2": SHIFT_OUTLET["CO2"]})
+    assert found.degrees_of_freedom == 0
+    assert found.inconsistent
+    assert ways[0][0] == {"outlet/analysis/values/CO"}
+    assert_allclose(ways[0][1], 0.74, atol=1e-3)
+    (by_limit,) = [x for out, x in ways if out == {"outlet/analysis/values/CO2"}]
+    assert by_limit > 0.99
+
+
+def test_a_limit_within_twice_the_uncertainty_is_not_contradicted() -> None:
+    # Without the limit the others put carbon monoxide at 5.39 % with u 0.28 %.
+    found = estimate(shift({**without("CO"), "CO": (0.052, 0.0, "below")}))
+    assert found.readings.within_limit[found.readings.subjects.index(CO)] == 0
+    assert not found.readings.contradicted.any()
+    assert not found.inconsistent
+    # Where nothing else tells, nothing contradicts it.
+    assert not estimate(shift({"CO": (0.0005, 0.0, "below")})).inconsistent
+
+
+def test_a_gross_error_and_a_limit_it_seems_to_contradict() -> None:
+    # Hydrogen read a fifth too high; the limit on carbon monoxide is right.
+    values: dict[str, Any] = {**SHIFT_OUTLET, "CO": (0.06, 0.0, "below"), "H2": (0.43, 0.002)}
+    found, _, ways = contradicting(values)
+    assert found.inconsistent
+    assert ways[0][0] == {"outlet/analysis/values/H2"}
+    assert_allclose(ways[0][1], 0.74, atol=5e-3)
+
+
+def test_limits_are_contradicted_sample_by_sample() -> None:
+    limit = Series(np.array([0.0005, 0.06, 0.0539]), np.full(3, 5e-4), np.array([-1, -1, 0]))
+    found = estimate(replace(shift(SHIFT_OUTLET), series={CO: limit}))
+    assert found.inconsistent.tolist() == [True, False, False]
+    assert found.readings.contradicted[:, found.readings.subjects.index(CO)].tolist() == [
+        True,
+        False,
+        False,
+    ]
+    (note,) = [note for note in found.notes if note.code == "limit-contradicted"]
+    assert "(1 of 3 samples)" in str(note)
+
+
+def test_what_is_left_open_contradicts_no_limit() -> None:
+    # A fraction settles the conversion; of the volume only a lower limit is known.
+    reactions = reactions_of({"r1": "A -> R"}, ["A"], opaque("A", "R"))
+    feed = stream_of(reactions, "feed", phase="liquid", flows={"A": (1.0, 0.01)})
+    sample = analysis_of(reactions, "outlet", {"A": (0.2, 0.002)})
+    outlet = stream_of(
+        reactions, "outlet", phase="liquid", analysis=sample, volume=(1e9, 0.0, "above")
+    )
+    found = estimate(account(reactions, "A", feed, outlet))
+    place = found.readings.subjects.index(("outlet", "volumetric_flow"))
+    assert not found.readings.contradicted.any()
+    assert found.readings.within_limit[place] == -1
+    assert np.isnan(found.readings.reconciled[place])
 
 
 # Exact readings.
