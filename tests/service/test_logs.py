@@ -8,6 +8,7 @@ import flask
 import pytest
 
 from service import __version__, logs
+from service.app import create_app
 
 
 class StrangeError(Exception):
@@ -148,3 +149,19 @@ def test_an_answer_does_not_depend_on_its_log(app):
         os.close(kept)
         os.close(writer)
     assert answer.status_code == 200
+
+
+@pytest.mark.usefixtures("configured")
+def test_a_failure_behind_the_routes_quotes_no_path_either(lines):
+    made = create_app()
+
+    @made.after_request
+    def fail(_response):
+        raise ValueError("secret")
+
+    response = made.test_client().post("/secret?secret=1", data=b"secret")
+    assert response.status_code == 500
+    said = lines()
+    assert said[0]["exception"][0]["class"] == "ValueError"
+    assert said[-1]["status"] == 500
+    assert "secret" not in str(said)
