@@ -244,8 +244,8 @@ def _places(
         raise refuse(
             "nowhere-to-leave",
             ("outlet",),
-            "found no outlet stream that can hold {substances}, which is fed or made. Name it in"
-            " the analysis of the stream in which it leaves, leave the analysis of that stream"
+            "no outlet stream can hold {substances}, and the account has it, fed or made. Name it"
+            " in the analysis of the stream in which it leaves, leave the analysis of that stream"
             " open (no balance, and values that do not sum to 100 %), or add the stream",
             substances=listed([problem.reactions.names[i] for i in stuck]),
         )

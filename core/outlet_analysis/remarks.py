@@ -8,15 +8,18 @@ import numpy as np
 
 from core.arrays import BoolArray
 from core.errors import Fact, Note, Readings
-from core.outlet_analysis.account import Account, listed
+from core.outlet_analysis.account import listed
 from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, percent
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.readings import BELOW
 
 ILL_CONDITIONED = 1e8
 """Inflation of a variance from which on the answer is called ill-conditioned."""
 
 ASSUMPTIONS = frozenset({"per-mole-of-key", "removed-taken-as-absent", "outlet-placement"})
 """Codes of what an estimate takes for granted; the other remarks are about what it found."""
+BY_DIFFERENCE = 0.005
+"""Share of what leaves of a substance from which on it is said where it is found by difference."""
 UNREAD = 0.03
 """Share of a stream that no value names from which on a whole analysis is doubted."""
 
@@ -73,7 +76,7 @@ def remarks(found: Estimate) -> Iterator[Note]:
             facts=facts,
         )
     yield from _absent(found, counted)
-    yield from _placement(account)
+    yield from _placement(found)
     yield from _below_zero(found, counted)
     yield from _backwards(found, counted)
     if found.ways > len(found.without_suspects):
@@ -89,8 +92,13 @@ def remarks(found: Estimate) -> Iterator[Note]:
         yield Note(
             "limit-contradicted",
             "the other readings put this value beyond its limit by more than twice the uncertainty"
-            " that they leave it, and the limit, taken as true, overrules them: doubt the limit,"
-            " or them; see the answer without it" + words,
+            " that they leave it: doubt the limit, or them. "
+            + (
+                "The limit is heeded nevertheless; see the answer without it"
+                if (found.readings.bound[:, k] == BELOW).any()
+                else "A value off scale is not heeded in the answer"
+            )
+            + words,
             severity="warning",
             subject=found.readings.subjects[k],
             facts=facts,
@@ -119,9 +127,9 @@ def _absent(found: Estimate, counted: Counted) -> Iterator[Note]:
         )
 
 
-def _placement(account: Account) -> Iterator[Note]:
+def _placement(found: Estimate) -> Iterator[Note]:
     """What several outlet streams are taken to hold."""
-    outlets = account.problem.outlet
+    outlets, feeds = found.account.problem.outlet, len(found.account.problem.feed)
     if len(outlets) < 2:
         return
     free = tuple(stream.subject for stream in outlets if stream.present is None)
@@ -134,7 +142,37 @@ def _placement(account: Account) -> Iterator[Note]:
     if named:
         facts["named"] = Readings(named)
         words.append("only what is named there leaves in {named}")
-    yield Note("outlet-placement", ", and ".join(words), subject=("outlet",), facts=facts)
+    detail = ", and ".join(words)
+    for q, stream in enumerate(outlets):
+        shares = _by_difference(found, feeds + q) if stream.present is None else []
+        if shares:
+            facts[f"stream_{q}"], facts[f"shares_{q}"] = Readings((stream.subject,)), listed(shares)
+            detail += (
+                f". What the other streams leave over, and no value there tells, is in"
+                f" {{stream_{q}}}: {{shares_{q}}}; state the phase of what cannot be there, or"
+                " complete the analysis"
+            )
+    yield Note("outlet-placement", detail, subject=("outlet",), facts=facts)
+
+
+def _by_difference(found: Estimate, g: int) -> list[str]:
+    """Substances, with the share of all that leaves, in stream ``g`` and in no value of it."""
+    account = found.account
+    analysis = account.streams[g].analysis
+    read: set[int] = set()
+    if analysis is not None:
+        read.update(*(component.weights for component in analysis.components))
+    flows, left = found.stream_flows(g), found.outlet_flows
+    elsewhere = (found.stream_forms(g) != account.outlet_map).any(axis=1)
+    words = []
+    for i in np.flatnonzero(elsewhere & found.stream_forms(g).any(axis=1)).tolist():
+        there = np.isfinite(flows[:, i]) & (left[:, i] > 0)
+        if i in read or not there.any():
+            continue
+        share = float((flows[there, i] / left[there, i]).mean())
+        if share > BY_DIFFERENCE:
+            words.append(f"{account.problem.reactions.names[i]} ({100 * share:.2g} %)")
+    return words
 
 
 def _below_zero(found: Estimate, counted: Counted) -> Iterator[Note]:
@@ -210,12 +248,15 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     for of in account.sums:
         subject = of.analysis.subject
         off = of.off[rows]
-        wide = good & of.complete & (np.abs(off) > np.maximum(REMARKED, COVERAGE * of.u[rows]))
+        wide = good & (np.abs(off) > np.maximum(REMARKED, COVERAGE * of.u[rows]))
+        if not of.complete:
+            # Part of a sample, or all of it but a balance: less than the whole is right.
+            wide &= (off > 0) & (not of.of_feed)
         if wide.any():
             words, facts = counted(wide)
             yield Note(
                 "analysis-sum",
-                "the fractions of the feed sum to {sum} and nothing makes up the rest; name a"
+                "the fractions sum to {sum}, which their uncertainties do not explain; name a"
                 " balance or the missing substances, correct the values, or say that they are"
                 " normalised" + words,
                 severity="warning",

@@ -174,7 +174,7 @@ def _metered(
     outlet: bool = False,
 ) -> MeteredStream:
     def named(*subject: str | int) -> Measurement:
-        return blank._replace(subject=(side, *subject))
+        return Measurement(blank.value, blank.u, (side, *subject))
 
     every = [int(i) for i in present]
     basis = str(rng.choice(["mole", "mass", "concentration", "mass-concentration"]))

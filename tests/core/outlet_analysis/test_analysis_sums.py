@@ -152,6 +152,11 @@ def test_an_outlet_above_the_whole_is_refused() -> None:
         assert fault.code == "analysis-sum"
         assert fault.subject == ("outlet", "analysis")
         assert fault.facts["sum"] == "110 %"
+    # A little above it is remarked.
+    much = {n: (1.03 * v[0], v[1]) for n, v in SHIFT_OUTLET.items()}  # type: ignore[index]
+    found = estimate(outlet_with(much, removed=["H2O"]))
+    (note,) = [note for note in found.notes if note.code == "analysis-sum"]
+    assert note.facts["sum"] == "103 %"
     # Less than the whole is a part of it.
     assert "analysis-sum" not in codes(estimate(outlet_with(SHIFT_OUTLET, removed=["H2O"])))
 

@@ -249,7 +249,8 @@ def test_a_limit_that_good_readings_contradict(limit: float, bound: str) -> None
 
 
 def test_a_limit_against_one_reading_may_be_either() -> None:
-    found, _, ways = contradicting({"CO": (0.0005, 0.0, "below"), "CO2": SHIFT_OUTLET["CO2"]})
+    found, notes, ways = contradicting({"CO": (0.0005, 0.0, "below"), "CO2": SHIFT_OUTLET["CO2"]})
+    assert len(notes) == 1
     assert found.degrees_of_freedom == 0
     assert found.inconsistent
     assert ways[0][0] == {"outlet/analysis/values/CO"}

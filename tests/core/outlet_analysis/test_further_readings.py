@@ -88,7 +88,7 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
         changed = replace(stream, flows=(*stream.flows, FlowReading("amount", new, substance=i)))
     elif of["hot"]:
         changed = replace(
-            stream, temperature=new, pressure=new._replace(subject=("new", words, "P"))
+            stream, temperature=new, pressure=Measurement(1.0, 0.01, ("new", words, "P"))
         )
     elif of["dense"]:
         changed = replace(stream, density=new)
@@ -111,7 +111,7 @@ def measured(problem: AccountProblem, values: dict[Any, float]) -> AccountProble
         if of is None:
             return None
         value = values.get(of.subject, of.value)
-        return of._replace(value=value, u=0.01 * abs(value) + 1e-6)
+        return Measurement(value, 0.01 * abs(value) + 1e-6, of.subject)
 
     def stream(of: MeteredStream) -> MeteredStream:
         analysis = of.analysis

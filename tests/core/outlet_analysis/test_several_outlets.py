@@ -166,6 +166,12 @@ def test_acid_that_may_leave_as_mist_is_found_in_the_off_gas_and_told() -> None:
     (note,) = [note for note in found.notes if note.code == "outlet-placement"]
     assert note.facts["free"] == Readings((("offgas",),))
     assert note.facts["named"] == Readings((("acid",),))
+    assert "H2SO4 (6 %)" in str(note)
+    # Kept out by its phase, there is none to tell of.
+    (note,) = [
+        note for note in estimate(absorber("liquid")).notes if note.code == "outlet-placement"
+    ]
+    assert "H2SO4" not in str(note)
 
 
 def test_what_no_outlet_stream_names_has_nowhere_to_leave() -> None:
