@@ -207,7 +207,7 @@ class _RequestLog:
             line["status"] = int(status[:3])
             for name, value in headers:
                 if name == "Content-Length":
-                    line["bytes"] = int(value)
+                    line["bytes"] = int(value) if line["method"] != "HEAD" else 0
                     break
             headers.append(("X-Request-ID", request_id))
             return start_response(status, headers, *exc_info)

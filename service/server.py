@@ -30,7 +30,7 @@ from gunicorn.http.body import ChunkedReader, LengthReader
 from gunicorn.workers.gthread import ThreadWorker
 
 from service import logs
-from service.problem_details import INTERNAL, MALFORMED, PROBLEM_JSON, problem
+from service.problem_details import INTERNAL, MALFORMED, problem
 from service.statuses import STATUSES
 
 REQUEST_LINE = 4094  # bytes
@@ -278,16 +278,13 @@ class _Worker(ThreadWorker):  # type: ignore[misc]
             self.log.error("request %s failed outside the application", request_id, exc_info=exc)
         # Which path was meant is not known; "/" stands for the service.
         with self.wsgi.test_request_context():
-            body = problem(status, code, detail).get_data()
+            response = self.wsgi.process_response(problem(status, code, detail))
+        body = response.get_data()
         line = {"method": None, "route": None, "status": status, "bytes": len(body), "code": code}
         logs.write_request(self._taken_up.at, {"request_id": request_id, **line})
-        head = (
-            f"HTTP/1.1 {status} {HTTPStatus(status).phrase}\r\n"
-            "Connection: close\r\n"
-            f"Content-Type: {PROBLEM_JSON}\r\n"
-            f"Content-Length: {len(body)}\r\n"
-            f"X-Request-ID: {request_id}\r\n\r\n"
-        )
+        response.headers["Connection"] = "close"
+        response.headers["X-Request-ID"] = request_id
+        head = f"HTTP/1.1 {status} {HTTPStatus(status).phrase}\r\n{response.headers}"
         with contextlib.suppress(OSError):  # the client may be gone
             util.write_nonblock(client, head.encode() + body)
 

@@ -78,6 +78,12 @@ def test_the_log_says_which_route_refused_the_method(server):
     assert (line["route"], line["code"]) == (PATH, "method-not-allowed")
 
 
+def test_an_answer_without_its_body_has_no_bytes(server):
+    answer = server.request("HEAD", "/healthz", headers={"X-Request-ID": "head.1"})
+    assert (answer.status, answer.body) == (200, b"")
+    assert server.logged("head.1")["bytes"] == 0
+
+
 HEAD = f"POST {PATH} HTTP/1.1\r\nHost: here\r\nContent-Type: application/json\r\n".encode()
 
 
@@ -105,6 +111,8 @@ def test_what_is_not_http_is_a_problem_too(server, data, status, code):
     answer = server.raw(data)
     assert answer.status == status
     assert answer.problem()["type"] == f"/problems/{code}"
+    assert answer.headers["X-Content-Type-Options"] == "nosniff"
+    assert answer.headers["Cache-Control"] == "no-store"
     line = server.logged(answer.headers["X-Request-ID"])
     assert (line["event"], line["status"], line["code"]) == ("request", status, code)
     assert (line["bytes"], line["release"]) == (len(answer.body), __version__)
