@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 from marshmallow import fields
@@ -200,7 +200,8 @@ class AnalysisReader:
                     continue
                 molar_mass = float(self.reactions.molar_masses[next(iter(weights))])
                 self.reader.places[about] = (place, raw.unit, molar_mass)
-                found = found._replace(
+                found = replace(
+                    found,
                     value=found.value / molar_mass,
                     u=None if found.u is None else found.u / molar_mass,
                 )

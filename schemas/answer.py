@@ -6,6 +6,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from core.records import record
 from schemas.edge import Json
 
 
@@ -21,7 +22,7 @@ class Table:
         return {"columns": dict(self.columns), "units": dict(self.units)}
 
 
-@dataclass(frozen=True)
+@record()
 class Answer:
     """A result in the request's units, with what its reader must know.
 

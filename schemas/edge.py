@@ -17,6 +17,7 @@ from typing import Any, NamedTuple
 from core.constants import STANDARD_ATMOSPHERE
 from core.dimensions import DIMENSIONS, Exponents
 from core.errors import Amount, Fact, Fault, Note, Readings, Refused, Subject, sentence
+from core.records import record
 from schemas.quantities import LARGEST, Bound, RawQuantity
 from schemas.shape import LocatedFault, MeaningError, child
 from schemas.units import (
@@ -41,11 +42,11 @@ OFTEN_GAUGE = frozenset({"mmH2O", "cmH2O", "mH2O", "inH2O", "psi"})
 DIFFERENCES = {"temperature": "temperature_difference", "pressure": "pressure_difference"}
 
 
-class Measured(NamedTuple):
+@record()
+class Measured:
     """A quantity of the request in SI.
 
-    ``u`` is its standard uncertainty (SI), None where none was stated. A tuple:
-    every request makes many, in less than half the time of a frozen dataclass.
+    ``u`` is its standard uncertainty (SI), None where none was stated.
     """
 
     value: float
@@ -82,7 +83,7 @@ class Scale:
     offset: float
 
 
-@dataclass(frozen=True)
+@record()
 class EdgeMap:
     """From core subjects to places of the request, and from SI to its units."""
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterable, Mapping
+from dataclasses import replace
 from functools import lru_cache
 from typing import Any
 
@@ -386,7 +387,7 @@ def _limit_quantity(loaded: dict[str, Any]) -> RawQuantity:
     if len(loaded) != 1:
         raise ValidationError(message("not-a-quantity", "state 'below' or 'above', not both"))
     bound, limit = next(iter(loaded.items()))
-    said: RawQuantity = limit._replace(bound=bound)
+    said: RawQuantity = replace(limit, bound=bound)
     return said
 
 

@@ -9,10 +9,11 @@ from __future__ import annotations
 
 import re
 from functools import lru_cache
-from typing import Literal, NamedTuple
+from typing import Literal
 
 from marshmallow import ValidationError
 
+from core.records import record
 from schemas.shape import message
 
 NUMBER_PATTERN = r"[+-]?(?:[0-9]{1,20}(?:\.[0-9]{0,20})?|\.[0-9]{1,20})(?:[eE][+-]?[0-9]{1,2})?"
@@ -29,7 +30,8 @@ _READING = re.compile(f"(?:([<>])[ ]?)?({NUMBER_PATTERN})({UNIT_PATTERN})")
 Bound = Literal["below", "above"]
 
 
-class RawQuantity(NamedTuple):
+@record()
+class RawQuantity:
     """A quantity of the request, its unit not yet looked up.
 
     ``u`` is in the value's own unit unless ``u_unit`` says otherwise; ``bound``

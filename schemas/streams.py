@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import cached_property
 from typing import Literal
 
@@ -383,7 +383,7 @@ class StreamReader:
                 return
             molar_volume, share = meter
             # Whatever is wrong with the meter's conditions is wrong with this reading alone.
-            reading = reading._replace(u=math.hypot(reading.u, share * reading.value))
+            reading = replace(reading, u=math.hypot(reading.u, share * reading.value))
         yield FlowReading(
             kinds[found.dimension], reading, as_analysed=as_analysed, molar_volume=molar_volume
         )
