@@ -769,7 +769,8 @@ NOTES: dict[str, Entry] = {
     ),
     "denominator-near-zero": Entry(
         "Denominator near zero",
-        "A ratio is null because its denominator is within twice its uncertainty of zero.",
+        "A ratio is null because its denominator is within twice its uncertainty of zero, or zero"
+        " but for rounding.",
     ),
     "conversion-poorly-known": Entry(
         "Conversion poorly known",

@@ -127,6 +127,11 @@ class Account:
         """Feeds followed by outlets."""
         return (*self.problem.feed, *self.problem.outlet)
 
+    def largest_flow(self, z: FloatArray) -> FloatArray:
+        """Largest flow of a substance in a stream, shape (...), of unknowns (..., n)."""
+        count = len(self.streams) * len(self.problem.reactions.substances)
+        return np.asarray(np.abs(z @ self.stream_map[:count].T).max(axis=-1))
+
 
 def listed(words: Sequence[str]) -> str:
     """Return the words in a row: 'a, b and c'."""

@@ -103,7 +103,7 @@ class _Closures:
                 part = forms_of(z, covariance, forms)
                 self.values[name][at] = np.where(hidden, np.nan, part.value)
                 self.spread[name][at] = np.where(hidden, np.nan, part.u)
-            part = ratios(z, covariance, out, into)
+            part = ratios(z, covariance, out, into, account.largest_flow(z))
             hidden = open_in | open_out | tied
             self.values["ratio"][at] = np.where(hidden, np.nan, part.value)
             self.spread["ratio"][at] = np.where(hidden, np.nan, part.u)
@@ -167,6 +167,17 @@ def _notes(
                     " the inert substances that hold it were used to tell",
                     subject=("closure", element),
                     facts={"element": element},
+                )
+            )
+        elif (none := np.isnan(of.values["ratio"][:, e]) & ~np.isnan(of.values["out"][:, e])).any():
+            words, facts = counted(none)
+            notes.append(
+                Note(
+                    "denominator-near-zero",
+                    "no closure of {element} is given: what is fed of it is within twice its"
+                    " uncertainty of zero, or of what rounding leaves" + words,
+                    subject=("closure", element),
+                    facts={"element": element, **facts},
                 )
             )
     return notes

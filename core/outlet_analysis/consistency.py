@@ -229,7 +229,10 @@ def suspects(
     fit = fitted.fit.samples(seen.doubtful)
     z, natural, stated = fitted.z[rows], fitted.natural[rows], stated.samples(rows)
     part = seen.samples(seen.doubtful)
-    while len(rows):
+    # Each round leaves out a reading of every sample that goes on, so there are no more of them.
+    for _ in range(m + 1):
+        if not len(rows):
+            break
         members = _cannot_be_told_apart(part, stated) & part.failing[:, None]
         going: BoolArray = np.asarray(members.any(axis=1))
         # Of equal tests the least error over u is that of the largest redundancy.

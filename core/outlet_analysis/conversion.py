@@ -125,7 +125,8 @@ def conversion_results(
     denominators = np.concatenate(
         [np.broadcast_to(fed, (1 + count, len(fed))), np.broadcast_to(fed - left, made.shape)]
     )
-    all_ratios = ratios(z, covariance, numerators, denominators)
+    largest = account.largest_flow(z)
+    all_ratios = ratios(z, covariance, numerators, denominators, largest)
     nowhere = np.isnan(factors)
 
     def part(first: int, last: int, hidden: BoolArray) -> Uncertain:
@@ -156,7 +157,15 @@ def conversion_results(
         without_suspects=tuple(
             (
                 way.removed,
-                _first(ratios(way.z, way.covariance, (fed - left)[None], fed[None])),
+                _first(
+                    ratios(
+                        way.z,
+                        way.covariance,
+                        (fed - left)[None],
+                        fed[None],
+                        account.largest_flow(way.z),
+                    )
+                ),
             )
             for way in found.without_suspects
         ),
@@ -180,7 +189,7 @@ def _key_by(account: Account, z: FloatArray, covariance: FloatArray) -> tuple[Un
     takes_part = nu != 0
     consuming = (z @ terms.T >= 0) & takes_part
     total = consuming.astype(float) @ terms
-    signed = ratios(z, covariance, terms, total[..., None, :])
+    signed = ratios(z, covariance, terms, total[..., None, :], account.largest_flow(z))
     makes = takes_part & ~consuming
 
     def of(marks: BoolArray, sign: float) -> Uncertain:
@@ -314,7 +323,7 @@ def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
             Note(
                 "denominator-near-zero",
                 "no conversion or yield is given: the flow of {key} fed is within twice its"
-                " uncertainty of zero" + words,
+                " uncertainty of zero, or of what rounding leaves" + words,
                 severity="warning",
                 subject=("conversion",),
                 facts={"key": names[key], **facts},
@@ -330,11 +339,25 @@ def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
             Note(
                 "denominator-near-zero",
                 "no selectivity is given: the amount of {key} converted is within twice its"
-                " uncertainty of zero" + words,
+                " uncertainty of zero, or of what rounding leaves" + words,
                 subject=("selectivities",),
                 facts={"key": names[key], **facts},
             )
         )
+    if results.key_consumed_by is not None and results.key_produced_by is not None:
+        shares = (results.key_consumed_by.value, results.key_produced_by.value)
+        unshared = estimated & np.all([np.isnan(share).all(axis=-1) for share in shares], axis=0)
+        if unshared.any():
+            words, facts = counted(unshared)
+            notes.append(
+                Note(
+                    "denominator-near-zero",
+                    "no shares of the reactions are given: what they consume of {key} is within"
+                    " twice its uncertainty of zero, or of what rounding leaves" + words,
+                    subject=("key_consumed_by",),
+                    facts={"key": names[key], **facts},
+                )
+            )
     poor = estimated & (np.nan_to_num(results.conversion.u) > POORLY_KNOWN)
     if poor.any():
         words, facts = counted(poor)

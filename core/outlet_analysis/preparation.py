@@ -288,8 +288,7 @@ def _inside(block: Block, start: FloatArray) -> FloatArray:
 
 def natural_size(account: Account, z: FloatArray) -> FloatArray:
     """Size of each unknown: of flows and extents that of the largest flow; (N, n)."""
-    count = len(account.streams) * len(account.problem.reactions.substances)
-    largest = np.abs(z @ account.stream_map[:count].T).max(axis=1)
+    largest = account.largest_flow(z)
     largest = np.where(largest > 0, largest, 1.0)
     own = ~(account.of_flow | account.of_extent)
     size = np.broadcast_to(largest[:, None], z.shape)

@@ -14,6 +14,11 @@ from core.arrays import FloatArray
 
 NEAR_ZERO = 2.0
 """A denominator within so many of its standard uncertainties of zero gives no ratio."""
+CANCELLED = 1e-12
+"""Denominator, relative to its terms, which is what rounding leaves of them; of one without
+uncertainty also relative to the largest flow."""
+ROUNDING = 2e-15
+"""Denominator, relative to the largest flow, which rounding alone can make."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,13 +36,25 @@ def forms_of(z: FloatArray, covariance: FloatArray, forms: FloatArray) -> Uncert
 
 
 def ratios(
-    z: FloatArray, covariance: FloatArray, numerators: FloatArray, denominators: FloatArray
+    z: FloatArray,
+    covariance: FloatArray,
+    numerators: FloatArray,
+    denominators: FloatArray,
+    largest: FloatArray,
 ) -> Uncertain:
-    """Ratios of linear forms (k, n), or (..., k, n), shape (..., k)."""
+    """Ratios of linear forms of flows (k, n), or (..., k, n), shape (..., k).
+
+    ``largest`` (...) is the largest flow of the account. There is no ratio
+    where its denominator is zero within its uncertainty or within rounding.
+    """
     above = (numerators * z[..., None, :]).sum(axis=-1)
-    below = (denominators * z[..., None, :]).sum(axis=-1)
+    terms = denominators * z[..., None, :]
+    below = terms.sum(axis=-1)
     variance = ((denominators @ covariance) * denominators).sum(axis=-1)
-    near = np.abs(below) <= NEAR_ZERO * np.sqrt(np.maximum(variance, 0.0))
+    u = np.sqrt(np.maximum(variance, 0.0))
+    rounding = np.where(u > 0, ROUNDING, CANCELLED) * largest[..., None]
+    rounding = np.maximum(rounding, CANCELLED * np.abs(terms).sum(axis=-1))
+    near = np.abs(below) <= np.maximum(NEAR_ZERO * u, rounding)
     safe = np.where(near, 1.0, below)
     value = above / safe
     slope = (numerators - value[..., None] * denominators) / safe[..., None]
