@@ -371,7 +371,10 @@ class _RateReader:
         kinds: dict[str, EquilibriumKind] = {}
         allowed = {}
         wanted: tuple[EquilibriumKind, ...] = ("pressure", "concentration", "thermodynamic")
-        for kind in wanted[self.phase == "liquid" :]:
+        if self.phase == "liquid":
+            # A number says nothing where the moles change: it hangs on standard states.
+            wanted = ("concentration",) if total else ("concentration", "thermodynamic")
+        for kind in wanted:
             spelt = spell(equilibrium_unit_parts(kind, total))
             kinds[spelt] = kind
             allowed[spelt] = equilibrium_unit_exponents(kind, total)

@@ -22,7 +22,6 @@ from schemas.feed import (
     StreamResultSchema,
     is_batch,
     read_feed,
-    words_of,
     write_known_stream,
 )
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Tagged, Text, describe
@@ -222,10 +221,12 @@ def _read_target(
         return None
     kind = stated[0]
     batch = is_batch(request["feed"])
-    dimension = words_of(batch).flow_dimension if kind == "flow" else TARGET_DIMENSIONS[kind]
+    dimensions: tuple[str, ...] = (TARGET_DIMENSIONS[kind],)
+    if kind == "flow":
+        dimensions = ("amount", "mass") if batch else ("molar_flow", "mass_flow")
     raw = said["yield_" if kind == "yield" else kind]
     place = child("/target", kind)
-    found = reader.quantity(raw, place, ("target", kind), dimension, at_least=0)
+    found = reader.quantity(raw, place, ("target", kind), *dimensions, at_least=0)
     if found is None or substance is None or feed is None:
         return None
     if not feed.flows[key] > 0 or not reactions.nu[0, key] < 0:
@@ -233,6 +234,9 @@ def _read_target(
         return 0.5
     held = feed.phase == "liquid" or request["reactor"].get("hold") == "volume"
     reader.at(("target", "conversion"), place)
+    value = found.value
+    if found.dimension in ("mass", "mass_flow"):
+        value /= float(reactions.molar_masses[substance])
     try:
         return conversion_for(
             reactions,
@@ -240,7 +244,7 @@ def _read_target(
             feed,
             substance,
             kind,
-            found.value,
+            value,
             constant_volume=held,
             subject=subject,
         )

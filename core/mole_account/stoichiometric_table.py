@@ -459,7 +459,7 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
     # The plainest form of each step: on one state the arrays are so small that what is
     # called counts, not what it adds up.
     reactions, inlet, outlet = problem.reactions, problem.inlet, problem.outlet
-    changes = extents.dot(reactions.nu)
+    changes = extents.dot(reactions.nu) + 0.0  # no -0
     flows = inlet.flows + changes
     # What rounding leaves of a substance that is used up exactly is nothing. Mostly every
     # flow stands well above what rounding could leave of the largest.

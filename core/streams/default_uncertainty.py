@@ -23,7 +23,7 @@ class DefaultUncertainty:
 
 
 DEFAULT_UNCERTAINTIES = {
-    "flow": DefaultUncertainty(0.02, 0.0, "2 % of the reading for flows"),
+    "flow": DefaultUncertainty(0.02, 0.0, "2 % of the reading for flows and charges"),
     "gas-analysis": DefaultUncertainty(
         0.01, 0.0002, "1 % of the reading plus 0.02 % absolute for gas analyses"
     ),

@@ -433,9 +433,8 @@ case(
         VOLUME,
         changed(
             REVERSIBLE,
-            species__R__molar_mass="30 g/mol",
-            reactions__0__equation="A <=> 2 R",
-            reactions__0__rate__of="A",
+            species__R__phase="gas",
+            reactions__0__equilibrium_constant="1 m3/kmol",
         ),
     ),
     "/reactions/0/equilibrium_constant",

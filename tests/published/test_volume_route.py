@@ -97,6 +97,8 @@ def test_ethylene_glycol_in_one_tank(client):
     # The same question put as the production that is wanted.
     wanted = {**request, "target": {"species": "EG", "flow": f"{glycol} lbmol/min"}}
     assert value(result(client, VOLUME, wanted)["conversion"]) == pytest.approx(0.8, rel=1e-12)
+    by_mass = {**request, "target": {"species": "EG", "flow": f"{glycol * 62} lb/min"}}
+    assert value(result(client, VOLUME, by_mass)["conversion"]) == pytest.approx(0.8, rel=1e-12)
     gallons = result(client, VOLUME, {**request, "report_in": {"volume": "gal"}})
     assert value(gallons["volume"], "gal") == pytest.approx(1480, abs=5)
 
