@@ -35,7 +35,7 @@ from core.outlet_analysis.readings import (
     read,
 )
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import MeteredStream
+from core.streams.metered import Component, FlowReading, MeteredStream
 
 Kind = Literal["flow", "extent", "volume", "temperature", "pressure", "scale"]
 
@@ -176,12 +176,33 @@ def build_account(problem: AccountProblem) -> Account:
         :func:`core.outlet_analysis.readings.read` raises.
     """
     _check(problem)
+    problem = replace(
+        problem,
+        feed=tuple(in_order(stream) for stream in problem.feed),
+        outlet=tuple(in_order(stream) for stream in problem.outlet),
+    )
     readings, writer = read(
         problem.reactions, (*problem.feed, *problem.outlet), len(problem.feed), problem.series
     )
     reactions = independent_reactions(problem.reactions.nu) if problem.outlet else []
     sums = analysis_sums(readings, writer)
     return _assemble(problem, readings, writer, sums, reactions, released=None)
+
+
+def in_order(stream: MeteredStream) -> MeteredStream:
+    """Return the stream with its readings by what they are of.
+
+    The order in which readings and substances were named must decide nothing:
+    neither rounding nor, of several accounts that fit alike, which is found.
+    """
+
+    def place(of: FlowReading | Component) -> tuple[str, ...]:
+        return tuple(map(str, of.measurement.subject))
+
+    analysis = stream.analysis
+    if analysis is not None:
+        analysis = replace(analysis, components=tuple(sorted(analysis.components, key=place)))
+    return replace(stream, flows=tuple(sorted(stream.flows, key=place)), analysis=analysis)
 
 
 def release_outlet(account: Account, absent: Sequence[int] = ()) -> Account:
@@ -289,12 +310,16 @@ def _assemble(
     count, feeds = len(problem.reactions.substances), len(problem.feed)
     streams = (*problem.feed, *problem.outlet)
     columns = _Columns()
+    by_name = sorted(range(count), key=problem.reactions.names.__getitem__)
     entries: list[tuple[int, int, float]] = []  # row of the stream space, column, coefficient
 
     # Summed flows as {column: coefficient} by substance, feeds first.
     total: list[dict[int, float]] = [{} for _ in range(count)]
     for g, stream in enumerate(problem.feed):
-        for i in sorted(fed_in(stream)):
+        present = fed_in(stream)
+        for i in by_name:
+            if i not in present:
+                continue
             column = columns.add("flow", g, i)
             entries.append((g * count + i, column, 1.0))
             total[i][column] = 1.0
@@ -308,7 +333,8 @@ def _assemble(
     reachable = [i for i in range(count) if fed[i] or made[i]]
     left: list[dict[int, float]] = [{} for _ in range(count)]
     places = _places(problem, writer, reachable) if problem.outlet else {}
-    for i, where in places.items():
+    for i in by_name:
+        where = places.get(i)
         if not where:
             continue
         free = False

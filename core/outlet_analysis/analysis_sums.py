@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import FloatArray
 from core.errors import Fault
 from core.outlet_analysis.readings import ABOVE, FRACTIONS, Readings, ReadingWriter
 from core.streams.metered import Analysis
@@ -34,12 +34,13 @@ class AnalysisSum:
     ----------
     stream : int
     analysis : Analysis
-    names : frozenset of int
-        Substances that it names: those with a value, the balance, those removed.
+    unread : tuple of int
+        Substances of the stream's phase that it does not name: neither with a
+        value nor as the balance or removed.
     least, most : ndarray, shape (N,)
         What the sum is at least and at most, without the balance.
-    u : ndarray, shape (N,)
-        Standard uncertainty of the values together.
+    place : slice
+        Where its values stand among the readings.
     of_feed : bool
     complete : bool
         Of a feed: everything that it may hold has a value or was removed.
@@ -47,25 +48,12 @@ class AnalysisSum:
 
     stream: int
     analysis: Analysis
-    names: frozenset[int]
+    unread: tuple[int, ...]
     least: FloatArray
     most: FloatArray
-    u: FloatArray
+    place: slice
     of_feed: bool
     complete: bool
-
-    @property
-    def whole(self) -> BoolArray:
-        """Whether the values, or the balance, make up a whole sample, shape (N,)."""
-        if self.analysis.balance is not None:
-            return np.ones(len(self.least), dtype=bool)
-        return np.asarray((self.least >= 1 - WHOLE) & (self.most <= 1 + WHOLE))
-
-    @property
-    def off(self) -> FloatArray:
-        """Distance of the sum from 1 at the least, with its sign, shape (N,)."""
-        above, below = np.maximum(self.least - 1, 0), np.minimum(self.most - 1, 0)
-        return np.where(above > 0, above, below)
 
 
 def analysis_sums(readings: Readings, writer: ReadingWriter) -> tuple[AnalysisSum, ...]:
@@ -84,29 +72,47 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
         read = [i for each in weights for i in each]
         if len(set(read)) < len(read):
             continue
-        bound, value = readings.bound[:, place], readings.measured[:, place]
-        there = np.isfinite(value)
-        least = value / np.array([max(each.values()) for each in weights])
-        most = value / np.array([min(each.values()) for each in weights])
-        # What is off scale may be a wrong limit: it is held against the account instead.
-        least = np.where(there & (bound == 0), least, 0.0)
-        most = np.where(there & (bound != ABOVE), most, np.inf)
-        u = np.where(there & (bound == 0), readings.u[:, place], 0.0)
+        least, most = _range(readings, place, weights)
         left = _left_of_removed(analysis, least, most, weights, writer.masses)
         names = {*read, *(removal.substance for removal in analysis.removed)}
         if analysis.balance is not None:
             names.add(analysis.balance)
-        may_hold = set(np.flatnonzero(writer.own[g]).tolist()).intersection(stream.present or ())
+        own = np.flatnonzero(writer.own[g]).tolist()
+        unread = tuple(i for i in own if i not in names)
         yield AnalysisSum(
             g,
             analysis,
-            frozenset(names),
+            unread,
             least.sum(axis=1) + left[0],
             most.sum(axis=1) + left[1],
-            np.sqrt((u * u).sum(axis=1)),
+            place,
             of_feed,
-            of_feed and analysis.balance is None and names.issuperset(may_hold),
+            of_feed and analysis.balance is None and (stream.present or set()).isdisjoint(unread),
         )
+
+
+def _range(
+    readings: Readings, place: slice, weights: list[Mapping[int, float]]
+) -> tuple[FloatArray, FloatArray]:
+    """At least and at most, what each value of an analysis may stand for, (N, k)."""
+    value, bound = readings.measured[:, place], readings.bound[:, place]
+    least = most = value
+    if any(weight != 1 for each in weights for weight in each.values()):
+        least = value / np.array([max(each.values()) for each in weights])
+        most = value / np.array([min(each.values()) for each in weights])
+    there = np.isfinite(value)
+    if bound.any() or not there.all():
+        # What is off scale may be a wrong limit: it is held against the account instead.
+        least = np.where(there & (bound == 0), least, 0.0)
+        most = np.where(there & (bound != ABOVE), most, np.inf)
+    return least, most
+
+
+def sum_u(readings: Readings, of: AnalysisSum, rows: slice) -> FloatArray:
+    """Standard uncertainty of the values of an analysis together, shape (N,)."""
+    proper = np.isfinite(readings.measured[rows, of.place]) & (readings.bound[rows, of.place] == 0)
+    u = np.where(proper, readings.u[rows, of.place], 0.0)
+    return np.asarray(np.sqrt((u * u).sum(axis=1)))
 
 
 def _left_of_removed(
@@ -133,7 +139,11 @@ def sum_faults(sums: Iterable[AnalysisSum], rows: slice) -> dict[int, Fault]:
     for of in sums:
         least, most = of.least[rows], of.most[rows]
         # A feed with a balance that is less than nothing shows as a negative flow.
-        wrong = (least > MOST) & (of.complete or not of.of_feed) | (most < LEAST) & of.complete
+        wrong = np.zeros(len(least), dtype=bool)
+        if of.complete or not of.of_feed:
+            wrong |= least > MOST
+        if of.complete:
+            wrong |= most < LEAST
         for row in np.flatnonzero(wrong).tolist():
             total = least[row] if least[row] > MOST else most[row]
             found[row] = Fault(

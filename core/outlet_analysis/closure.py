@@ -139,12 +139,11 @@ def _notes(
         ]
     counted = counting(account.readings.samples)
     notes = []
+    anywhere = of.unread.any(axis=0)
     for e, element in enumerate(elements):
-        holds = of.unread & (atoms[e] > 0)
-        marks: BoolArray = np.asarray(holds.any(axis=(1, 2)))
-        if marks.any():
-            words, facts = counted(marks)
-            found = holds.any(axis=0)
+        found = anywhere & (atoms[e] > 0)
+        if found.any():
+            words, facts = counted(np.asarray((of.unread & found).any(axis=(1, 2))))
             where = [
                 f"{', '.join(names[i] for i in np.flatnonzero(found[side]))} {way}"
                 for side, way in ((0, "fed"), (1, "leaving"))

@@ -22,6 +22,10 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 
 
+CANCELLED = 1e-14
+"""Part of its terms that rounding leaves of a sum."""
+
+
 @dataclass(frozen=True, eq=False)
 class Evaluation:
     """What the forms give at ``z``; N samples, m readings, q bases.
@@ -74,10 +78,19 @@ class Forms:
     exponents: FloatArray
 
     def through(self, linear_map: FloatArray) -> Forms:
-        """Return the same readings over other unknowns z', with z = map z'."""
-        return Forms(
-            self.constants, self.numerators @ linear_map, self.bases @ linear_map, self.exponents
+        """Return the same readings over other unknowns z', with z = map z'.
+
+        What rounding leaves where terms cancel is nothing.
+        """
+        size = np.abs(linear_map)
+        numerators, bases = (
+            np.where(np.abs(form) > CANCELLED * (np.abs(of) @ size), form, 0.0)
+            for form, of in (
+                (self.numerators @ linear_map, self.numerators),
+                (self.bases @ linear_map, self.bases),
+            )
         )
+        return Forms(self.constants, numerators, bases, self.exponents)
 
     def samples(self, rows: BoolArray | NDArray[np.intp] | slice) -> Forms:
         """Return the forms with the constants of the samples marked."""

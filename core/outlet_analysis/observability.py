@@ -41,11 +41,11 @@ LARGEST_SET = 3
 FEW = 5
 
 BLANK = Measurement(1.0, 1.0, ())
-FLOW_WORDS: dict[FlowKind, str] = {
-    "amount": "flow",
-    "mass": "mass flow",
-    "volume": "volumetric flow",
+FLOW_WORDS: dict[bool, dict[FlowKind, str]] = {
+    False: {"amount": "flow", "mass": "mass flow", "volume": "volumetric flow"},
+    True: {"amount": "amount", "mass": "mass", "volume": "volume"},
 }
+"""What is metered of a flow, and of a batch."""
 
 
 def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatArray) -> FloatArray:
@@ -207,7 +207,7 @@ def under_determined(
         Those of which only a lower limit is known.
     """
     names = account.problem.reactions.names
-    key = account.problem.key
+    key, flow = account.problem.key, FLOW_WORDS[account.problem.batch]["amount"]
     directions = open_directions(scaled)
     words: list[str] = []
     fed, left = account.feed_map, account.outlet_map
@@ -225,7 +225,7 @@ def under_determined(
     for forms, where in ((fed, "fed"), (left, "leaving")):
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
-            words.append(f"the flow of {listed(found)} {where}")
+            words.append(f"the {flow} of {listed(found)} {where}")
     subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
     if not words:
         return Fault(
@@ -252,7 +252,7 @@ def under_determined(
             facts[f"removed_{k}"] = names[i]
             detail += (
                 f". {{removed_{k}}} is removed from the sample of {where}, and no reading tells its"
-                " flow"
+                f" {flow}"
             )
     if missing:
         detail += ". Missing here: {missing}"
@@ -295,6 +295,7 @@ class _Further:
         problem = account.problem
         self.streams, self.feeds = account.streams, len(problem.feed)
         self.names = problem.reactions.names
+        self.flow_words = FLOW_WORDS[problem.batch]
         self.writer = ReadingWriter(problem.reactions, self.streams, self.feeds)
         self.words: list[tuple[str, frozenset[_Claim]]] = []
 
@@ -319,13 +320,15 @@ class _Further:
             for i in carried:
                 if i not in by_substance:
                     self._flow(g, FlowReading("amount", BLANK, substance=i))
-                    self.note(f"the flow of {self.names[i]} in {where}", (g, "form", "flows"))
+                    words = f"the {self.flow_words['amount']} of {self.names[i]} in {where}"
+                    self.note(words, (g, "form", "flows"))
         elif g < self.feeds:
             for removal in stream.analysis.removed:
                 if removal.residual == 0 and removal.substance in carried:
                     self._flow(g, FlowReading("amount", BLANK, substance=removal.substance))
                     self.note(
-                        f"the flow of {self.names[removal.substance]}, as a feed stream of its own"
+                        f"the {self.flow_words['amount']} of {self.names[removal.substance]}, as a"
+                        " feed stream of its own"
                     )
         self._volume(g, where)
 
@@ -356,10 +359,12 @@ class _Further:
             kind = "volume"
         self._flow(g, FlowReading(kind, BLANK))
         analysed: _Claim = (g, "form", "analysis")
-        self.note(f"the total {FLOW_WORDS[kind]} of {where}", analysed, (g, "flow", "whole"))
+        self.note(f"the total {self.flow_words[kind]} of {where}", analysed, (g, "flow", "whole"))
         if analysis.removed and kind != "volume":
             self._flow(g, FlowReading(kind, BLANK, as_analysed=True))
-            self.note(f"the {FLOW_WORDS[kind]} of {where} as analysed", (g, "flow", "as-analysed"))
+            self.note(
+                f"the {self.flow_words[kind]} of {where} as analysed", (g, "flow", "as-analysed")
+            )
 
     def _volume(self, g: int, where: str) -> None:
         stream, writer = self.streams[g], self.writer
@@ -377,7 +382,7 @@ class _Further:
                 self.note(f"the density of {where}")
             if stream.analysis is None:
                 self._flow(g, FlowReading("volume", BLANK))
-                self.note(f"the volumetric flow of {where}", (g, "form", "flows"))
+                self.note(f"the {self.flow_words['volume']} of {where}", (g, "form", "flows"))
         elif not writer.has_conditions(g):
             volume = writer.further_base(g, VOLUME)
             writer.add(g, BLANK, writer.flows(g, writer.own[g]), [(volume, -1.0)])

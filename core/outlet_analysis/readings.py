@@ -513,7 +513,7 @@ def _per_mole(writer: ReadingWriter, forms: Forms) -> FloatArray:
     """Mean weight of the substances that each reading counts; a typical molar volume of others."""
     counted = forms.numerators[:, : len(writer.streams) * writer.count]
     some = np.count_nonzero(counted, axis=1)
-    mean = np.abs(counted).sum(axis=1) / np.maximum(some, 1)
+    mean = np.sort(np.abs(counted), axis=1).sum(axis=1) / np.maximum(some, 1)
     typical = np.array([1 / MOLAR_DENSITY[writer.streams[g].phase] for g in writer.stream_of])
     plain = (some > 0) & ~np.any(forms.exponents != 0, axis=1)
     return np.where(plain, mean * forms.constants, typical)

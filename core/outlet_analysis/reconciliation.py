@@ -248,17 +248,14 @@ def _single(block: Estimate) -> Estimate:
     """Drop the sample axis of a block of one, or raise what stands against it."""
     if block.failed:
         raise Refused(block.failed[0])
-    changed: dict[str, Any] = {
-        f.name: getattr(block, f.name)[0]
-        for f in fields(block)
-        if isinstance(getattr(block, f.name), np.ndarray)
-    }
-    table: dict[str, Any] = {
-        f.name: getattr(block.readings, f.name)[0]
-        for f in fields(block.readings)
-        if isinstance(getattr(block.readings, f.name), np.ndarray)
-    }
-    return replace(block, readings=replace(block.readings, **table), **changed)
+
+    def first(of: Any) -> dict[str, Any]:
+        return {
+            name: value[0] if isinstance(value, np.ndarray) else value
+            for name, value in vars(of).items()
+        }
+
+    return Estimate(**first(block) | {"readings": ReadingTable(**first(block.readings))})
 
 
 def joined(blocks: list[Estimate]) -> Estimate:

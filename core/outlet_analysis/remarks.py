@@ -9,7 +9,7 @@ import numpy as np
 from core.arrays import BoolArray
 from core.errors import Fact, Note, Readings
 from core.outlet_analysis.account import listed
-from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, percent
+from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, WHOLE, percent, sum_u
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.readings import BELOW
 
@@ -75,7 +75,8 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("outlet",) if problem.outlet else ("feed",),
             facts=facts,
         )
-    yield from _absent(found, counted)
+    if found.absent.any():
+        yield from _absent(found, counted)
     yield from _placement(found)
     yield from _below_zero(found, counted)
     yield from _backwards(found, counted)
@@ -87,6 +88,14 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("reconciliation",),
             facts={"ways": found.ways, "shown": len(found.without_suspects)},
         )
+    if found.readings.contradicted.any():
+        yield from _contradicted(found, counted)
+    yield from _sum_notes(found, counted)
+    yield from _removal_notes(found, counted)
+
+
+def _contradicted(found: Estimate, counted: Counted) -> Iterator[Note]:
+    """Limits beyond which the readings proper put the value."""
     for k in np.flatnonzero(found.readings.contradicted.any(axis=0)).tolist():
         words, facts = counted(found.readings.contradicted[:, k])
         yield Note(
@@ -103,8 +112,6 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=found.readings.subjects[k],
             facts=facts,
         )
-    yield from _sum_notes(found, counted)
-    yield from _removal_notes(found, counted)
 
 
 def _absent(found: Estimate, counted: Counted) -> Iterator[Note]:
@@ -180,6 +187,9 @@ def _below_zero(found: Estimate, counted: Counted) -> Iterator[Note]:
     account = found.account
     names = account.problem.reactions.names
     feeds = len(account.problem.feed)
+    every = account.stream_map[: len(account.streams) * len(names)]
+    if not (found.z @ every.T < 0).any():
+        return
     sides = [(("feed",), "fed", account.feed_map, range(feeds))]
     if account.problem.outlet:
         streams = range(feeds, len(account.streams))
@@ -247,27 +257,33 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     good = np.isfinite(found.chi_square)
     for of in account.sums:
         subject = of.analysis.subject
-        off = of.off[rows]
-        wide = good & (np.abs(off) > np.maximum(REMARKED, COVERAGE * of.u[rows]))
-        if not of.complete:
-            # Part of a sample, or all of it but a balance: less than the whole is right.
-            wide &= (off > 0) & (not of.of_feed)
-        if wide.any():
-            words, facts = counted(wide)
-            yield Note(
-                "analysis-sum",
-                "the fractions sum to {sum}, which their uncertainties do not explain; name a"
-                " balance or the missing substances, correct the values, or say that they are"
-                " normalised" + words,
-                severity="warning",
-                subject=subject,
-                facts={"sum": percent(1 + float(off[wide][0])), **facts},
+        least, most = of.least[rows], of.most[rows]
+        if least.max(initial=0) > 1 + REMARKED or most.min(initial=1) < 1 - REMARKED:
+            off = np.where(least > 1, least - 1, np.minimum(most - 1, 0))
+            wide = good & (
+                np.abs(off) > np.maximum(REMARKED, COVERAGE * sum_u(account.readings, of, rows))
             )
-        marks = good & of.whole[rows]
-        unread = [
-            i for i in np.flatnonzero(account.writer.own[of.stream]).tolist() if i not in of.names
-        ]
-        if not unread or not marks.any():
+            if not of.complete:
+                # Part of a sample, or all of it but a balance: less than the whole is right.
+                wide &= (off > 0) & (not of.of_feed)
+            if wide.any():
+                words, facts = counted(wide)
+                yield Note(
+                    "analysis-sum",
+                    "the fractions sum to {sum}, which their uncertainties do not explain; name a"
+                    " balance or the missing substances, correct the values, or say that they are"
+                    " normalised" + words,
+                    severity="warning",
+                    subject=subject,
+                    facts={"sum": percent(1 + float(off[wide][0])), **facts},
+                )
+        if not of.unread:
+            continue
+        unread = list(of.unread)
+        marks = good & (
+            (least >= 1 - WHOLE) & (most <= 1 + WHOLE) | (of.analysis.balance is not None)
+        )
+        if not marks.any():
             continue
         weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)

@@ -149,9 +149,12 @@ def _possible(
     account = block.account
     substances = sorted({account.unknowns[column].index for column in fitted.absent.tolist()})
     forms = account.outlet_map[substances]
+    scale = np.abs(fitted.z @ account.feed_map.T).max(axis=1, keepdims=True)
+    if not (fitted.z @ forms.T < -1e-9 * scale).any():
+        yield fitted
+        return
     z, covariance = fitted.with_covariance()
     u = np.sqrt(np.maximum(((forms @ covariance) * forms).sum(axis=-1), 0.0))
-    scale = np.abs(z @ account.feed_map.T).max(axis=1, keepdims=True)
     wrong = (z @ forms.T < -np.maximum(2 * u, 1e-9 * scale)).any(axis=1)
     if not wrong.any():
         yield fitted

@@ -248,6 +248,7 @@ def test_a_liquid_by_mass_is_not_settled_by_its_solvent() -> None:
     problem = account(reactions, "A", charge, residue, batch=True)
     fault = fault_of(problem)
     assert fault is not None
+    assert "the amount of A and B leaving" in str(fault)
     assert sorted(suggestions(fault)) == [
         ["the fraction of A in the analysis of the outlet"],
         ["the fraction of B in the analysis of the outlet"],
@@ -297,6 +298,17 @@ def test_a_removed_substance_is_fed_as_a_stream_of_its_own() -> None:
     assert ["the flow of H2O, as a feed stream of its own"] in suggestions(fault)
     for chosen in suggestions(fault):
         settled(problem, chosen)
+
+
+def test_of_a_batch_its_volume_is_asked_for() -> None:
+    reactions = reactions_of({"r1": "A -> R"}, ["A"], opaque(A=0.06, R=0.06))
+    charge = stream_of(reactions, "feed", phase="liquid", flows={"A": (1.0, 0.01)})
+    sample = analysis_of(reactions, "outlet", {"A": (2.0, 0.02)}, basis="concentration")
+    outlet = stream_of(reactions, "outlet", phase="liquid", analysis=sample)
+    fault = fault_of(account(reactions, "A", charge, outlet, batch=True))
+    assert fault is not None
+    assert ["the volume of the feed"] in suggestions(fault)
+    assert ["the total volume of the outlet"] in suggestions(fault)
 
 
 @pytest.mark.parametrize("basis", ["concentration", "mass-concentration"])
