@@ -19,6 +19,7 @@ from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
+from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
@@ -97,6 +98,9 @@ class Account:
     ----------
     problem : AccountProblem
     readings : Readings
+        By what they are of, whatever the order in which they were given.
+    written : ndarray of int, shape (m,)
+        The readings in the order in which they were given.
     writer : ReadingWriter
     sums : tuple of AnalysisSum
     unknowns : tuple of Unknown, length n
@@ -112,6 +116,7 @@ class Account:
 
     problem: AccountProblem
     readings: Readings
+    written: NDArray[np.intp]
     writer: ReadingWriter
     sums: tuple[AnalysisSum, ...]
     unknowns: tuple[Unknown, ...]
@@ -176,6 +181,7 @@ def build_account(problem: AccountProblem) -> Account:
         :func:`core.outlet_analysis.readings.read` raises.
     """
     _check(problem)
+    given = [subject for stream in (*problem.feed, *problem.outlet) for subject in named(stream)]
     problem = replace(
         problem,
         feed=tuple(in_order(stream) for stream in problem.feed),
@@ -186,7 +192,19 @@ def build_account(problem: AccountProblem) -> Account:
     )
     reactions = independent_reactions(problem.reactions.nu) if problem.outlet else []
     sums = analysis_sums(readings, writer)
-    return _assemble(problem, readings, writer, sums, reactions, released=None)
+    rank = {subject: place for place, subject in enumerate(given)}
+    written = np.argsort([rank.get(s, len(given)) for s in readings.subjects], kind="stable")
+    return _assemble(problem, readings, written, writer, sums, reactions, released=None)
+
+
+def named(stream: MeteredStream) -> list[Subject]:
+    """Return the subjects of the readings of a stream as given, but temperature and pressure."""
+    of = [reading.measurement.subject for reading in stream.flows]
+    if stream.density is not None:
+        of.append(stream.density.subject)
+    if stream.analysis is not None:
+        of += [component.measurement.subject for component in stream.analysis.components]
+    return of
 
 
 def in_order(stream: MeteredStream) -> MeteredStream:
@@ -223,7 +241,13 @@ def release_outlet(account: Account, absent: Sequence[int] = ()) -> Account:
         problem = replace(problem, feed=feed)
     unmetered = frozenset(q for q, stream in enumerate(problem.outlet) if not stream.flows)
     return _assemble(
-        problem, account.readings, account.writer, account.sums, [], released=unmetered
+        problem,
+        account.readings,
+        account.written,
+        account.writer,
+        account.sums,
+        [],
+        released=unmetered,
     )
 
 
@@ -300,6 +324,7 @@ def _may_occur(problem: AccountProblem, substance: int) -> bool:
 def _assemble(
     problem: AccountProblem,
     readings: Readings,
+    written: NDArray[np.intp],
     writer: ReadingWriter,
     sums: tuple[AnalysisSum, ...],
     reactions: list[int],
@@ -376,6 +401,7 @@ def _assemble(
     return Account(
         problem,
         readings,
+        written,
         writer,
         sums,
         tuple(columns.unknowns),

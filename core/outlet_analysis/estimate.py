@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -61,6 +61,15 @@ class ReadingTable:
     suspect_set: IntArray
     within_limit: NDArray[np.int8]
     contradicted: BoolArray
+
+    def in_order(self, order: IntArray) -> ReadingTable:
+        """Return the readings in another order."""
+        changed: dict[str, Any] = {
+            name: value[..., order] if isinstance(value, np.ndarray) else value
+            for name, value in vars(self).items()
+        }
+        changed["subjects"] = tuple(self.subjects[k] for k in order.tolist())
+        return ReadingTable(**changed)
 
 
 @dataclass(frozen=True, eq=False)

@@ -21,7 +21,6 @@ from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
 
-
 CANCELLED = 1e-14
 """Part of its terms that rounding leaves of a sum."""
 

@@ -124,11 +124,17 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             )
     failed.update(sum_faults(account.sums, rows))
     out.blank(sorted(failed))
+    place = np.argsort(account.written)
+    without = tuple(
+        replace(way, removed=tuple(place[list(way.removed)].tolist())) for way in without
+    )
     result = Estimate(
         account=account,
         z=out.z,
         covariance=out.covariance,
-        readings=_table(block, readings.measured[rows], readings.u[rows], out),
+        readings=_table(block, readings.measured[rows], readings.u[rows], out).in_order(
+            account.written
+        ),
         chi_square=out.chi_square,
         degrees_of_freedom=out.freedom,
         limit=out.limit,

@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import json
+import random
+
 import pytest
 
 CONVERSION = "/v1/conversion"
@@ -14,6 +17,11 @@ def exact(value: float) -> dict[str, object]:
 
 def uncertain(value: float, unit: str, u: float) -> dict[str, object]:
     return {"value": value, "unit": unit, "u": u}
+
+
+def post(client, request):
+    """Post a request with its members in their order."""
+    return client.post(CONVERSION, data=json.dumps(request), content_type="application/json")
 
 
 def noted(answer, code: str) -> str:
@@ -47,7 +55,7 @@ ENDLESS = {
 
 
 def test_readings_that_no_elimination_reconciles_end_in_an_answer(client):
-    response = client.post(CONVERSION, json=ENDLESS)
+    response = post(client, ENDLESS)
     assert response.status_code in (200, 422)
 
 
@@ -60,7 +68,7 @@ def test_a_key_that_is_not_fed_gives_no_conversion(client, nothing):
         "feed": {"phase": "gas", "flows": feed},
         "outlet": {"phase": "gas", "analysis": outlet},
     }
-    answer = client.post(CONVERSION, json=request).get_json()
+    answer = post(client, request).get_json()
     result = answer["result"]
     assert result["conversion"] is None
     assert all(value is None for value in result["yields"].values())
@@ -70,7 +78,7 @@ def test_a_key_that_is_not_fed_gives_no_conversion(client, nothing):
 def test_where_nothing_reacts_nothing_is_shared_out(client):
     flows = {"CO": exact(0.3), "H2O": exact(0.7), "CO2": exact(0.1)}
     side = {"phase": "gas", "flows": flows}
-    answer = client.post(CONVERSION, json={**SHIFT, "feed": side, "outlet": side}).get_json()
+    answer = post(client, {**SHIFT, "feed": side, "outlet": side}).get_json()
     result = answer["result"]
     assert result["conversion"]["value"] == pytest.approx(0, abs=1e-15)
     assert all(value is None for value in result["selectivities"].values())
@@ -78,3 +86,120 @@ def test_where_nothing_reacts_nothing_is_shared_out(client):
     said = noted(answer, "denominator-near-zero")
     assert "no selectivity" in said
     assert "no shares of the reactions" in said
+
+
+ETHYLENE = ["C2H4 + 1/2 O2 -> C2H4O", "C2H4 + 3 O2 -> 2 CO2 + 2 H2O"]
+COLD = {
+    "reactions": ETHYLENE,
+    "key": "C2H4",
+    "feed": {
+        "phase": "gas",
+        "analysis": {
+            "basis": "mole",
+            "values": {
+                "C2H4": "66.6 %",
+                "O2": "0.0 %",
+                "C2H4O": "213461 ppm",
+                "CO2": "1110 ppm",
+                "H2O": "88791 ppm",
+                "CH4": "30627 ppm",
+            },
+        },
+        "temperature": {"value": 620, "unit": "K", "u": 0},
+        "pressure": "350 psig",
+    },
+    "outlet": {
+        "phase": "gas",
+        "analysis": {
+            "basis": "concentration",
+            "values": {
+                "C2H4": "0.2118 kmol/m3",
+                "C2H4O": "0.06789 kmol/m3",
+                "CO2": "0.0003529 kmol/m3",
+            },
+            "removed": ["H2O"],
+        },
+        "volumetric_flow": "1000 m3/h",
+        "temperature": "0.001 K",
+        "pressure": "101.325 kPa",
+    },
+}
+LIMITED = {
+    **SHIFT,
+    "feed": {
+        "phase": "gas",
+        "flows": {"CO": exact(100), "H2O": exact(300), "CO2": "5 kmol/h", "N2": exact(50)},
+    },
+    "outlet": {
+        "phase": "gas",
+        "flow": exact(455),
+        "analysis": {
+            "basis": "mole",
+            "values": {"CO": "<1 %", "CO2": "20 %", "H2": "24 %", "N2": "11 %", "H2O": "41 %"},
+        },
+    },
+}
+
+
+def reordered(document, rng: random.Random):
+    """The document with the members of each object in another order."""
+    if isinstance(document, dict):
+        items = [(name, reordered(value, rng)) for name, value in document.items()]
+        return dict(rng.sample(items, len(items)))
+    if isinstance(document, list):
+        return [reordered(value, rng) for value in document]
+    return document
+
+
+def by_reading(result) -> dict[str, object]:
+    return {each["reading"]: each for each in result["reconciliation"]["readings"]}
+
+
+def assert_alike(one, other, place: str) -> None:
+    if isinstance(one, dict):
+        assert one.keys() == other.keys(), place
+        for name in one:
+            assert_alike(one[name], other[name], f"{place}/{name}")
+    elif isinstance(one, float | int):
+        assert other == pytest.approx(one, rel=1e-9, abs=1e-9), place
+    elif isinstance(one, list):
+        assert len(one) == len(other), place
+        for each, its in zip(one, other, strict=True):
+            assert_alike(each, its, place)
+    else:
+        assert one == other, place
+
+
+@pytest.mark.parametrize("request_", [COLD, LIMITED, ENDLESS], ids=["cold", "limited", "endless"])
+def test_the_order_of_members_decides_nothing(client, request_):
+    first = post(client, request_)
+    rng = random.Random(8)  # noqa: S311
+    for _ in range(8):
+        other = post(client, reordered(request_, rng))
+        assert other.status_code == first.status_code
+        if first.status_code != 200:
+            continue
+        said, again = first.get_json()["result"], other.get_json()["result"]
+        assert_alike(by_reading(said), by_reading(again), "readings")
+        for part in ("conversion", "extents", "inlet", "outlet", "closure", "yields"):
+            assert_alike(said[part], again[part], part)
+        assert_alike(
+            {k: v for k, v in said["reconciliation"].items() if k not in ("readings", "suspects")},
+            {k: v for k, v in again["reconciliation"].items() if k not in ("readings", "suspects")},
+            "reconciliation",
+        )
+
+
+def test_readings_stand_in_the_order_in_which_they_were_given(client):
+    given = {"H2O": "360 kmol/h", "CO": "120 kmol/h", "CO2": "60 kmol/h"}
+    values = {"H2": "31 %", "CO": "9 %", "CO2": "28 %"}
+    request = {
+        **SHIFT,
+        "feed": {"phase": "gas", "flows": given},
+        "outlet": {"phase": "gas", "analysis": {"basis": "mole", "values": values}},
+    }
+    result = post(client, request).get_json()["result"]
+    assert list(by_reading(result)) == [
+        *(f"/feed/flows/{name}" for name in given),
+        *(f"/outlet/analysis/values/{name}" for name in values),
+    ]
