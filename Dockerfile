@@ -4,7 +4,7 @@ WORKDIR /build
 ENV PIP_DISABLE_PIP_VERSION_CHECK=1
 RUN python -m venv --without-pip /opt/backend \
     && python -m venv --without-pip /opt/molwright
-COPY requirements.lock requirements-build.lock ./
+COPY requirements.lock .ci/requirements-build.lock ./
 RUN pip --python /opt/backend/bin/python install --no-cache-dir --require-hashes -r requirements-build.lock \
     && pip --python /opt/molwright/bin/python install --no-cache-dir --require-hashes -r requirements.lock
 COPY pyproject.toml README.md LICENSE ./

@@ -253,7 +253,7 @@ def reachable_python():
 
 def test_the_back_end_that_builds_is_locked_at_the_version_that_is_required():
     project = tomllib.loads((PROJECT / "pyproject.toml").read_text())
-    locked = re.findall(r"^\S+==\S+", (PROJECT / "requirements-build.lock").read_text(), re.M)
+    locked = re.findall(r"^\S+==\S+", (PROJECT / ".ci/requirements-build.lock").read_text(), re.M)
     assert locked == project["build-system"]["requires"]
 
 
