@@ -211,7 +211,7 @@ class RatioSchema(NumberSchema):
 
     basis = fields.String(required=True, metadata=describe("", enum=["key", "element"]))
     element = fields.String(metadata=describe("On element basis."))
-    factor = fields.Float(required=True, metadata=describe("Key equivalents per mole of product."))
+    factor = number("Key equivalents per mole of product.", required=True)
 
 
 class ClosureSchema(OpenSchema):
@@ -489,7 +489,7 @@ class _Writer:
                 number_["basis"] = said.basis
                 if said.element is not None:
                     number_["element"] = said.element
-                number_["factor"] = factor
+                number_["factor"] = self.edge.number(factor, "dimensionless")
             ratios[names[i]] = number_
         return ratios
 
