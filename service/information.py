@@ -10,7 +10,8 @@ from typing import Any
 
 from flask import Blueprint, Response, request
 
-from core.problems import CATALOGUE, NOTES, Entry
+from core.notes import NOTES
+from core.problems import CATALOGUE, Entry
 from schemas.contract import OPERATIONS, published_text
 from schemas.examples import paste
 from service import __version__

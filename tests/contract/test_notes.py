@@ -3,12 +3,12 @@
 import re
 from pathlib import Path
 
-from core.problems import NOTES
+from core.notes import NOTES
 
 SOURCES = [
     file.read_text(encoding="utf-8")
     for file in (*Path("core").rglob("*.py"), *Path("schemas").glob("*.py"))
-    if file.name != "problems.py"
+    if file.name != "notes.py"
 ]
 MADE = re.compile(r'Note\(\s*"([a-z-]+)"')
 

@@ -8,7 +8,8 @@ import pytest
 from openapi_spec_validator import validate
 from werkzeug.test import create_environ, run_wsgi_app
 
-from core.problems import CATALOGUE, NOTES
+from core.notes import NOTES
+from core.problems import CATALOGUE
 from schemas.contract import OPERATIONS, openapi_document, published_text, render
 from service.statuses import STATUSES
 from tests.support import assert_refused

@@ -1,0 +1,233 @@
+"""The catalogue of what an answer's reader must know: notes and assumptions.
+
+One entry a code, beside :mod:`core.problems`, which has what stands against an
+answer.
+"""
+
+from __future__ import annotations
+
+from core.problems import Entry
+
+NOTES: dict[str, Entry] = {
+    "screening-calculation": Entry(
+        "A screening calculation",
+        "Ideal reactors under stated conditions: no relief, runaway or flammability assessment."
+        " Follow local codes and licensed practice.",
+    ),
+    "default-uncertainty": Entry(
+        "Default uncertainty",
+        "A reading came without an uncertainty, and that of common practice was taken. State 'u' or"
+        " 'u_rel' where the instrument is known.",
+    ),
+    "default-uncertainty-large": Entry(
+        "Default uncertainty larger than the reading",
+        "The default of common practice exceeds the reading itself, as it does for traces. State"
+        " 'u'.",
+    ),
+    "instrument-taken-as-independent": Entry(
+        "Shared error taken as independent",
+        "Readings of one instrument share an error, and this release takes their errors as"
+        " independent of each other.",
+    ),
+    "uncertainty-not-used": Entry(
+        "Uncertainties not carried through",
+        "This calculation takes its feed as stated. Ask for a conversion where uncertainty counts.",
+    ),
+    "standard-atmosphere": Entry(
+        "Standard atmosphere",
+        "Gauge pressures were read with 101.325 kPa. State 'atmospheric_pressure' at altitude.",
+    ),
+    "pressure-taken-as-absolute": Entry(
+        "Pressure taken as absolute",
+        "The unit does not say whether the pressure is absolute or gauge, and it was taken as"
+        " absolute. Write a gauge reading with a gauge unit.",
+    ),
+    "pressure-from-volume": Entry(
+        "Pressure follows from the volume",
+        "Flows, volume and temperature of the gas were stated, and the pressure was computed.",
+    ),
+    "volumes-add-up": Entry(
+        "Volumes of mixed liquids add up",
+        "The volume of a mixed liquid was taken as the sum of its streams' volumes.",
+    ),
+    "constant-density": Entry(
+        "Constant density",
+        "A liquid's volumetric flow was taken as that of the feed throughout.",
+    ),
+    "constant-pressure": Entry(
+        "Constant pressure",
+        "The pressure was taken as that of the feed throughout.",
+    ),
+    "outlet-as-feed": Entry(
+        "Outlet at the feed's conditions",
+        "Where 'outlet' does not say otherwise, the feed's temperature and pressure were taken.",
+    ),
+    "removed-taken-as-absent": Entry(
+        "Removed substance taken as absent",
+        "A substance was removed before an analysis and nothing tells how much of it there was. The"
+        " conversion does not hang on it, and none was taken. State it in a stream of its own.",
+    ),
+    "outlet-placement": Entry(
+        "Where substances leave",
+        "Of several outlet streams, those that state flows or an analysis that adds up hold just"
+        " what they name; the others may hold anything.",
+    ),
+    "per-mole-of-key": Entry(
+        "Per mole of key",
+        "No reading tells how much flows, so every flow is given per mole of key fed.",
+    ),
+    "vapour-pressure-from-table": Entry(
+        "Vapour pressure from a table",
+        "The residual of a saturated substance was computed from a packaged correlation over the"
+        " pure liquid. State 'vapour_pressure' where a better value is known.",
+    ),
+    "standard-pressure-one-bar": Entry(
+        "Standard pressure 1 bar",
+        "A thermodynamic equilibrium constant was read with a standard pressure of 1 bar.",
+    ),
+    "affinity-exponent-one": Entry(
+        "Affinity exponent 1",
+        "The net rate was taken as forward (1 - Q/K) of the equation as written.",
+    ),
+    "extents-left-out": Entry(
+        "Extents left out",
+        "Reactions without an extent were taken not to run.",
+    ),
+    "concentrations-not-known": Entry(
+        "Concentrations not known",
+        "The volume of the stream is not known, so its concentrations are null.",
+    ),
+    "nothing-in-phase": Entry(
+        "Nothing in the phase",
+        "The readings leave nothing in the phase of a stream. Look for an analyser or a meter that"
+        " reads zero.",
+    ),
+    "mole-fractions-not-known": Entry(
+        "Mole fractions not known",
+        "A liquid given by concentrations may hold a solvent that they do not name, so its mole"
+        " fractions are null.",
+    ),
+    "solid-taken-as-gas": Entry(
+        "Solid taken as gas",
+        "An element that is hardly ever a gas is counted in one. Declare its phase.",
+    ),
+    "extents-not-unique": Entry(
+        "Extents not unique",
+        "Dependent reactions leave extents open; the flows of the substances are not.",
+    ),
+    "dependent-reactions": Entry(
+        "Dependent reactions",
+        "Some reactions can be made of others, so extents are not unique. Leave out the reactions"
+        " named if extents are needed.",
+    ),
+    "mass-imbalance": Entry(
+        "Mass left open",
+        "The stated molar masses leave 0.01 % to 0.5 % of mass open. Refine them.",
+    ),
+    "same-formula": Entry(
+        "Same atoms, two names",
+        "A name that stands in no reaction has the same atoms as one that does, and is kept apart"
+        " as an inert. Write both the same way if they are one substance.",
+    ),
+    "read-as-element": Entry(
+        "Label read as an element",
+        "A lone letter that stands in no reaction is read as an element. Declare it with a molar"
+        " mass if it is a label.",
+    ),
+    "rate-taken-as-irreversible": Entry(
+        "Rate taken as irreversible",
+        "The equation is written both ways and the rate is not. State 'reversible' if equilibrium"
+        " matters.",
+    ),
+    "several-volumes": Entry(
+        "Several volumes meet the target",
+        "The rate rises somewhere with conversion, and more than one volume meets the target; the"
+        " smallest is given.",
+    ),
+    "unstable-steady-state": Entry(
+        "Unstable steady state",
+        "The tank leaves the state it is sized for by itself; it would need control to stay there.",
+    ),
+    "product-needed-to-start": Entry(
+        "Product needed to start",
+        "The feed alone does not react. The tank must be started with product in it.",
+    ),
+    "idle-tanks": Entry(
+        "Idle tanks",
+        "The first tanks of the series stand unreacted.",
+    ),
+    "no-redundancy": Entry(
+        "No redundancy",
+        "The readings just suffice: none of them is checked by the others.",
+    ),
+    "ill-conditioned": Entry(
+        "Ill-conditioned",
+        "The readings barely tell the unknowns apart, as the uncertainty of the answer says.",
+    ),
+    "negative-flow": Entry(
+        "Flow below zero",
+        "The readings put a flow below zero by more than twice its uncertainty. Look for a wrong"
+        " reading, basis or removal, or a missing reaction.",
+    ),
+    "one-way-reaction-backwards": Entry(
+        "One-way reaction runs backwards",
+        "The readings put the extent of a one-way reaction below zero by more than twice its"
+        " uncertainty. Write it both ways, or look for a wrong reading.",
+    ),
+    "residual-above-content": Entry(
+        "Residual above content",
+        "The sample is said to keep more of a removed substance than the stream holds of it.",
+    ),
+    "sample-may-be-dried": Entry(
+        "Was the sample dried?",
+        "An analysis adds up to 100 % without substances that its stream holds. Name what was"
+        " removed from the sample under 'removed'.",
+    ),
+    "readings-inconsistent": Entry(
+        "Readings contradict each other",
+        "Chi-square is above its limit. See 'suspects' and 'without_suspect'.",
+    ),
+    "limit-contradicted": Entry(
+        "Limit contradicted",
+        "A detection limit or range end disagrees with the other readings. See 'without_suspect'.",
+    ),
+    "alternatives-not-all-given": Entry(
+        "Not all alternatives given",
+        "More ways to leave out suspect readings exist than are listed.",
+    ),
+    "yield-factor-missing": Entry(
+        "Yield factor missing",
+        "The reactions that make a product do not all consume the key at one ratio. State 'per_key'"
+        " or an element basis.",
+    ),
+    "denominator-near-zero": Entry(
+        "Denominator near zero",
+        "A ratio is null because its denominator is within twice its uncertainty of zero, or zero"
+        " but for rounding.",
+    ),
+    "conversion-poorly-known": Entry(
+        "Conversion poorly known",
+        "The readings say little of the conversion.",
+    ),
+    "closure-not-read": Entry(
+        "Closure not read",
+        "The readings alone do not tell all of an element, in or out.",
+    ),
+    "closure-by-tie": Entry(
+        "Closure by tie",
+        "No meter tells how much leaves, and the inerts that hold the element were used to tell.",
+    ),
+    "closure-opaque": Entry(
+        "Closure of opaque substances",
+        "Substances without a formula have no elements to close.",
+    ),
+    "distribution-not-told": Entry(
+        "Distribution not told",
+        "The readings do not tell how a substance is shared out among the outlet streams.",
+    ),
+    "analysis-sum": Entry(
+        "Analysis off 100 %",
+        "The values of an analysis miss 100 % by more than their uncertainties explain.",
+    ),
+}
+"""Codes of notes and assumptions in answers."""
