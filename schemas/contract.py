@@ -15,7 +15,8 @@ from typing import Any
 
 from marshmallow import Schema, fields
 
-from schemas.conversion import ConversionAnswer, ConversionRequest
+from schemas.conversion import ConversionRequest
+from schemas.conversion_answer import ConversionAnswer
 from schemas.edge import Json
 from schemas.examples import EXAMPLES
 from schemas.fields import LimitSchema, StrictField, UncertainSchema, quantity_components

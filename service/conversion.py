@@ -11,6 +11,7 @@ from core.outlet_analysis.reconciliation import estimate
 from schemas import conversion as wire
 from schemas.answer import Answer
 from schemas.contract import operation
+from schemas.conversion_answer import write
 from service.endpoint import calculation
 
 blueprint = Blueprint("conversion", __name__)
@@ -25,4 +26,4 @@ def answer(document: Any) -> Answer:
         results = conversion_results(
             found, basis=question.basis, element=question.element, per_key=question.per_key
         )
-    return wire.write(question, found, results, edge)
+    return write(question, found, results, edge)

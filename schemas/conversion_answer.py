@@ -1,0 +1,429 @@
+"""The answer to a conversion request: the account that fits best, and what it says."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+from marshmallow import fields
+from scipy.special import ndtri
+
+from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
+from core.errors import Note
+from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.outlet_analysis.conversion import ConversionResults
+from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.ratios import Uncertain
+from core.streams.known import Conditions, in_phase, solids_taken_as_gas
+from core.streams.metered import MeteredStream
+from schemas.answer import ATOMIC_WEIGHTS, Answer
+from schemas.conversion import ConversionQuestion
+from schemas.edge import EdgeMap, Json
+from schemas.feed import StreamResultSchema, words_of, write_stream
+from schemas.fields import describe
+from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
+from schemas.streams import Side
+
+
+class RatioSchema(NumberSchema):
+    """A yield or a selectivity, and what it counts by."""
+
+    basis = fields.String(required=True, metadata=describe("", enum=["key", "element"]))
+    element = fields.String(metadata=describe("On element basis."))
+    factor = number("Key equivalents per mole of product.", required=True)
+
+
+class ClosureSchema(OpenSchema):
+    """An element in and out, by the readings as they were taken."""
+
+    in_ = fields.Nested(
+        NumberSchema, data_key="in", required=True, allow_none=True, metadata=describe("Fed.")
+    )
+    out = number("Leaving.", required=True)
+    ratio = number("Out over in.", required=True)
+
+
+class ReconciledReadingSchema(OpenSchema):
+    """A reading beside what the account makes of it."""
+
+    reading = fields.String(required=True, metadata=describe("Its JSON Pointer in the request."))
+    measured = number("As it was read, with its uncertainty.", required=True)
+    reconciled = number("With the uncertainty that the whole account leaves.", required=True)
+    adjustment_over_u = number(
+        "(measured - reconciled)/sqrt(u^2 - u_reconciled^2): standard normal where nothing is"
+        " wrong; null without redundancy."
+    )
+    redundancy = number("0: no other reading checks it; 1: it is known from the others.")
+    smallest_detectable_error = number(
+        "Found nine times in ten at one false alarm in twenty; null without redundancy."
+    )
+    suspect = fields.Boolean(required=True)
+    bound = fields.String(
+        metadata=describe(
+            "Of a limit: the reconciled value against it.", enum=["within-limit", "beyond-limit"]
+        )
+    )
+
+
+class ReconciliationSchema(OpenSchema):
+    """How well the readings agree with each other."""
+
+    degrees_of_freedom = fields.Integer(required=True)
+    chi_square = number(required=True)
+    limit = number("Exceeded once in twenty by good readings; null without redundancy.")
+    p_value = number("Null without redundancy.")
+    consistent = fields.Boolean(required=True, allow_none=True)
+    readings = fields.List(fields.Nested(ReconciledReadingSchema), required=True)
+    suspects = fields.List(
+        fields.List(fields.String()),
+        required=True,
+        metadata=describe("Readings in doubt; those of one list cannot be told apart."),
+    )
+
+
+class AlternativeSchema(OpenSchema):
+    """The answer with some readings left out."""
+
+    removed = fields.List(fields.String(), required=True)
+    conversion = number(required=True)
+
+
+class WithoutSuspectSchema(AlternativeSchema):
+    """The answer with the suspect readings left out."""
+
+    alternatives = fields.List(
+        fields.Nested(AlternativeSchema),
+        metadata=describe("The other ways to choose among readings that cannot be told apart."),
+    )
+
+
+class ConversionResult(OpenSchema):
+    """The account that fits the readings best."""
+
+    conversion = number("Net, of the key.", required=True)
+    extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
+    inlet = fields.Nested(StreamResultSchema, required=True)
+    outlet = fields.Nested(StreamResultSchema, required=True)
+    key_consumed_by = numbers_by_name(text="Share of each consuming reaction.")
+    key_produced_by = numbers_by_name(text="Share of each producing reaction, of what is consumed.")
+    yields = numbers_by_name(RatioSchema, "By product, per key fed.")
+    selectivities = numbers_by_name(RatioSchema, "By product, per key converted.")
+    closure = numbers_by_name(ClosureSchema, "By element.")
+    reconciliation = fields.Nested(ReconciliationSchema, required=True)
+    without_suspect = fields.Nested(WithoutSuspectSchema)
+
+
+ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
+
+
+ASSUMED = frozenset({"per-mole-of-key", "outlet-placement", "removed-taken-as-absent"})
+"""Notes of the core that are assumptions."""
+
+METHOD = (
+    "weighted least squares on the mole account in extents of reaction; linear propagation of"
+    " uncertainty (GUM, JCGM 100:2008)"
+)
+
+
+def write(
+    question: ConversionQuestion, found: Estimate, results: ConversionResults, edge: EdgeMap
+) -> Answer:
+    """Return the answer that holds an estimate and what it says of the reactor."""
+    return _Writer(question, found, results, edge).answer()
+
+
+class _Writer:
+    def __init__(
+        self,
+        question: ConversionQuestion,
+        found: Estimate,
+        results: ConversionResults,
+        edge: EdgeMap,
+    ) -> None:
+        self.question, self.found, self.results = question, found, results
+        self.problem = question.problem
+        self.reactions = self.problem.reactions
+        # Limits are told in the units of the request, flows per mole of key where none is known.
+        self.edge = edge.per_mole_of_key() if found.per_mole_of_key else edge
+        self.coverage = self.problem.coverage
+        self.factor = float(ndtri(0.5 + self.coverage / 2))
+        self.flow = words_of(self.problem.batch).flow_dimension
+        self.assumed: list[Note] = []
+        self.notes: list[Note] = []
+
+    def answer(self) -> Answer:
+        found, results = self.found, self.results
+        ids = [reaction.id for reaction in self.reactions.reactions]
+        result: Json = {
+            "conversion": self._number(results.conversion),
+            "extents": self._by(ids, results.extents, self.flow),
+            "inlet": self._side("feed"),
+            "outlet": self._side("outlet"),
+        }
+        for name in ("key_consumed_by", "key_produced_by"):
+            shares: Uncertain | None = getattr(results, name)
+            if shares is not None:
+                there = {i: x for i, x in zip(ids, self._each(shares), strict=True) if x}
+                result[name] = there
+        result["yields"] = self._ratios(results.yields.yields)
+        result["selectivities"] = self._ratios(results.yields.selectivities)
+        if results.closures is not None:
+            result["closure"] = self._closure()
+        result["reconciliation"] = self._reconciliation()
+        if results.without_suspects:
+            result["without_suspect"] = self._without_suspect()
+        notes, assumed = self.notes, self.assumed
+        for note in (*self.edge.read_notes, *found.notes, *results.notes):
+            (assumed if note.code in ASSUMED else notes).append(note)
+        for phase in sorted({stream.phase for stream in self.problem.outlet}):
+            notes.extend(solids_taken_as_gas(self.reactions, phase))
+        if found.inconsistent:
+            notes.append(INCONSISTENT)
+        defaults = self.question.readings.readings.default_notes(set(found.readings.subjects))
+        return Answer(
+            result=result,
+            notes=self.edge.notes(notes),
+            assumed=self.edge.notes((*self.edge.read_assumed, *defaults, *assumed)),
+            method=METHOD,
+            data=ATOMIC_WEIGHTS,
+        )
+
+    def _number(self, of: Uncertain, dimension: str = "dimensionless") -> Json | None:
+        value, u = float(of.value), float(of.u)
+        if not np.isfinite(value):
+            return None
+        return self.edge.uncertain(value, u, dimension, coverage=self.coverage, factor=self.factor)
+
+    def _each(self, of: Uncertain, dimension: str = "dimensionless") -> list[Json | None]:
+        return [
+            self._number(Uncertain(value, u), dimension)
+            for value, u in zip(of.value, of.u, strict=True)
+        ]
+
+    def _by(self, names: Sequence[str], of: Uncertain | None, dimension: str) -> Json:
+        if of is None:
+            return dict.fromkeys(names)
+        return dict(zip(names, self._each(of, dimension), strict=True))
+
+    def _side(self, side: Side) -> Json:
+        """Return what flows on one side, and each stream where there are several."""
+        found, fed = self.found, len(self.problem.feed)
+        metered = self.problem.feed if side == "feed" else self.problem.outlet
+        flows = found.feed_flows if side == "feed" else found.outlet_flows
+        forms = found.account.feed_map if side == "feed" else found.account.outlet_map
+        conditions = self.question.conditions[side]
+        volume = None
+        if conditions is not None and conditions.phase == "liquid":
+            volume = self._liquid_volume(side)
+        stream = self._stream(flows, forms, conditions, volume)
+        if len(metered) > 1:
+            first = 0 if side == "feed" else fed
+            stream["streams"] = {
+                self.question.stream_ids[first + g]: self._one(first + g, one)
+                for g, one in enumerate(metered)
+            }
+        return stream
+
+    def _one(self, g: int, metered: MeteredStream) -> Json:
+        conditions = Conditions(
+            metered.phase,
+            metered.subject,
+            metered.temperature,
+            metered.pressure,
+            metered.compressibility,
+        )
+        return self._stream(
+            self.found.stream_flows(g), self.found.stream_forms(g), conditions, None
+        )
+
+    def _stream(
+        self,
+        flows: FloatArray,
+        forms: FloatArray,
+        conditions: Conditions | None,
+        volume: float | None,
+    ) -> Json:
+        names = self.reactions.names
+        told = np.isfinite(flows)
+        inside = None if conditions is None else in_phase(self.reactions, conditions.phase)
+        if inside is not None and told.all() and not flows[inside].sum() > TINY * abs(flows).sum():
+            # Nothing is left in the phase, so nothing is a fraction of it.
+            self._note(NOTHING_IN_PHASE)
+            inside = conditions = None
+        if not told.all():
+            # How a substance is shared out is open, so no total and no fraction is known.
+            names = tuple(name for name, there in zip(names, told, strict=True) if there)
+            flows, forms, inside, conditions = flows[told], forms[told], None, None
+        temperature = pressure = None
+        z = 1.0
+        if conditions is not None:
+            z = conditions.compressibility
+            temperature = None if conditions.temperature is None else conditions.temperature.value
+            pressure = None if conditions.pressure is None else conditions.pressure.value
+            if conditions.phase == "gas" and temperature is not None and pressure is not None:
+                total = float(flows[inside].sum())
+                volume = total * z * GAS_CONSTANT * temperature / pressure
+            if volume is None:
+                self._note(NO_CONCENTRATIONS)
+        stream = write_stream(
+            self.edge,
+            names,
+            flows,
+            inside,
+            batch=self.problem.batch,
+            volume=volume,
+            temperature=temperature,
+            pressure=pressure,
+            compressibility=z,
+            u=self.found.u_of(forms),
+            total_u=float(self.found.u_of(forms.sum(axis=0)[None])[0]),
+        )
+        if not told.all():
+            stream["total"] = None
+            self._note(DISTRIBUTION)
+        return stream
+
+    def _note(self, note: Note) -> None:
+        if note not in self.notes:
+            self.notes.append(note)
+
+    def _liquid_volume(self, side: Side) -> float | None:
+        """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
+        own = self.found.liquid_volume(side)
+        if own is None and side == "outlet":
+            # A liquid of constant density leaves with the volume that it came in with.
+            own = self.found.liquid_volume("feed")
+            if own is not None and np.isfinite(own):
+                self.assumed.append(CONSTANT_DENSITY)
+        return None if own is None or not np.isfinite(own) else float(own)
+
+    def _ratios(self, of: Uncertain) -> Json:
+        said = self.results.yields
+        names = self.reactions.names
+        ratios: Json = {}
+        for i, number_, factor in zip(
+            said.products, self._each(of), said.factors.tolist(), strict=True
+        ):
+            if number_ is not None:
+                number_["basis"] = said.basis
+                if said.element is not None:
+                    number_["element"] = said.element
+                number_["factor"] = self.edge.number(factor, "dimensionless")
+            ratios[names[i]] = number_
+        return ratios
+
+    def _closure(self) -> Json:
+        closures = self.results.closures
+        assert closures is not None
+        into, out = self._each(closures.into, self.flow), self._each(closures.out, self.flow)
+        return {
+            element: {"in": before, "out": after, "ratio": ratio}
+            for element, before, after, ratio in zip(
+                closures.elements, into, out, self._each(closures.ratio), strict=True
+            )
+        }
+
+    def _reconciliation(self) -> Json:
+        found = self.found
+        checked = int(found.degrees_of_freedom) > 0
+        table = found.readings
+        pointers = [self.edge.place(subject).pointer for subject in table.subjects]
+        sets: dict[int, list[str]] = {}
+        for pointer, number_ in zip(pointers, table.suspect_set.tolist(), strict=True):
+            if number_:
+                sets.setdefault(number_, []).append(pointer)
+        return {
+            "degrees_of_freedom": int(found.degrees_of_freedom),
+            "chi_square": self._plain(found.chi_square),
+            "limit": self._plain(found.limit) if checked else None,
+            "p_value": self._plain(found.p_value) if checked else None,
+            "consistent": not found.inconsistent if checked else None,
+            "readings": [self._reading(k) for k in range(len(pointers))],
+            "suspects": [sets[number_] for number_ in sorted(sets)],
+        }
+
+    def _plain(self, value: Any) -> Json | None:
+        plain = float(value)
+        return {"value": plain, "unit": "1"} if np.isfinite(plain) else None
+
+    def _reading(self, k: int) -> Json:
+        table = self.found.readings
+        place = self.edge.place(table.subjects[k])
+        unit = place.unit or "1"
+
+        def told(value: Any, u: Any = None) -> Json | None:
+            if not np.isfinite(value):
+                return None
+            if u is None or not np.isfinite(u):
+                return self.edge.number(float(value) * place.per, "dimensionless", unit)
+            return self.edge.uncertain(
+                float(value) * place.per, float(u) * place.per, "dimensionless", unit=unit
+            )
+
+        detectable = float(table.smallest_detectable_error[k])
+        said: Json = {
+            "reading": place.pointer,
+            "measured": _as_read(told(table.measured[k], table.u[k])),
+            "reconciled": told(table.reconciled[k], table.reconciled_u[k]),
+            "adjustment_over_u": self._plain(table.adjustment_over_u[k]),
+            "redundancy": self._plain(table.redundancy[k]),
+            "smallest_detectable_error": (
+                self.edge.difference(detectable * place.per, unit)
+                if np.isfinite(detectable)
+                else None
+            ),
+            "suspect": bool(table.suspect_set[k]),
+        }
+        if table.within_limit[k] >= 0:
+            said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
+        return said
+
+    def _without_suspect(self) -> Json:
+        subjects = self.found.readings.subjects
+        ways = [
+            {
+                "removed": [self.edge.place(subjects[k]).pointer for k in removed],
+                "conversion": self._number(conversion),
+            }
+            for removed, conversion in self.results.without_suspects
+        ]
+        first, *others = ways
+        return {**first, "alternatives": others} if others else first
+
+
+def _as_read(number_: Json | None) -> Json | None:
+    """Return a reading as it was read, free of the last digit of its way to SI and back."""
+    if number_ is None:
+        return None
+    return {k: float(f"{v:.14g}") if isinstance(v, float) else v for k, v in number_.items()}
+
+
+TINY = 1e-9
+"""Share of a stream's flows below which what is in its phase is rounding."""
+
+NOTHING_IN_PHASE = Note(
+    "nothing-in-phase",
+    "the readings leave nothing in the phase of a stream, so it has no mole fractions and no"
+    " concentrations",
+    "warning",
+)
+NO_CONCENTRATIONS = Note(
+    "concentrations-not-known",
+    "a stream has concentrations where its volume is known: state temperature and pressure of a"
+    " gas, volumetric flow, density or concentrations of a liquid",
+)
+DISTRIBUTION = Note(
+    "distribution-not-told",
+    "the readings do not tell how a substance is shared out among the outlet streams; such a"
+    " stream has no total, and only the flows that are known",
+    subject=("outlet",),
+)
+INCONSISTENT = Note(
+    "readings-inconsistent",
+    "the readings contradict each other beyond their uncertainties; 'suspects' names those in"
+    " doubt, 'without_suspect' the answer without them",
+    "warning",
+    ("outlet",),
+)
