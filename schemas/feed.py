@@ -230,17 +230,17 @@ def write_stream(
         phase_total = sum(compress(values, inside))
     species: Json = {}
     for name, flow, within in zip(names, values, inside, strict=True):
-        said: Json = {word: {"value": flow / factor, "unit": unit}}
-        if within:
-            said["mole_fraction"] = (
-                {"value": flow / phase_total, "unit": "1"} if fractions else None
-            )
-            said["concentration"] = (
-                None
-                if per_volume is None
-                else {"value": flow / per_volume, "unit": of_concentration}
-            )
-        species[name] = said
+        said = {"value": flow / factor, "unit": unit}
+        if not within:
+            species[name] = {word: said}
+            continue
+        species[name] = {
+            word: said,
+            "mole_fraction": {"value": flow / phase_total, "unit": "1"} if fractions else None,
+            "concentration": None
+            if per_volume is None
+            else {"value": flow / per_volume, "unit": of_concentration},
+        }
     if u is not None:
         for said, spread in zip(species.values(), u.tolist(), strict=True):
             said[word]["u"] = spread / factor

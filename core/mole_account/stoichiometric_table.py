@@ -170,7 +170,7 @@ class StoichiometricTable:
         """Whether the constant-flow equations hold here."""
         return not self.fails_because
 
-    @cached_property
+    @property
     def expressions(self) -> tuple[tuple[str, str | None], ...]:
         """Flow and concentration of each substance as formulas."""
         return tuple(_expressions(self))
@@ -569,11 +569,14 @@ def _assumed(problem: TableProblem) -> tuple[Note, ...]:
     held = inlet.batch and problem.hold == "volume"
     kept = [
         name
-        for name in ("temperature", "pressure")
-        if getattr(inlet, name) is not None
-        and getattr(problem.outlet, name) is None
-        and not (held and name == "pressure")
+        for name, before, after in _conditions(problem)[:2]
+        if before is not None and after is None and not (held and name == "pressure")
     ]
+    return _outlet_as_feed(*kept)
+
+
+@lru_cache
+def _outlet_as_feed(*kept: str) -> tuple[Note, ...]:
     if not kept:
         return ()
     return (
