@@ -195,6 +195,11 @@ NOTES: dict[str, Entry] = {
         "Not all alternatives given",
         "More ways to leave out suspect readings exist than are listed.",
     ),
+    "nothing-left-without-suspects": Entry(
+        "Nothing left without suspects",
+        "Without the suspect readings the others do not settle an account, or none comes near"
+        " them, so no 'without_suspect' is given.",
+    ),
     "yield-factor-missing": Entry(
         "Yield factor missing",
         "The reactions that make a product do not all consume the key at one ratio. State 'per_key'"

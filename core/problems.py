@@ -407,6 +407,11 @@ _MOLE_ACCOUNT: dict[str, Entry] = {
 }
 
 _OUTLET_ANALYSIS: dict[str, Entry] = {
+    "compute-budget": Entry(
+        "Compute budget used up",
+        "The account has more unknowns or readings than are worked through in one request. Leave"
+        " out what does not matter, take streams together, or split it.",
+    ),
     "under-determined": Entry(
         "Readings do not settle the account",
         "More is unknown than the readings say. The detail names what stays open and which further"

@@ -24,6 +24,7 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
 from core.outlet_analysis.analysis_sums import AnalysisSum, analysis_sums
+from core.outlet_analysis.budget import over_budget
 from core.outlet_analysis.readings import (
     FURTHER,
     PRESSURE,
@@ -177,7 +178,8 @@ def build_account(problem: AccountProblem) -> Account:
     Refused
         ``key-not-fed``: no feed stream holds the key. ``key-not-consumed``: no
         reaction does so, and there is an outlet. ``nowhere-to-leave``:
-        none of several outlet streams can hold a substance. Also what
+        none of several outlet streams can hold a substance. ``compute-budget``:
+        the account is larger than is worked through at once. Also what
         :func:`core.outlet_analysis.readings.read` raises.
     """
     _check(problem)
@@ -194,7 +196,13 @@ def build_account(problem: AccountProblem) -> Account:
     sums = analysis_sums(readings, writer)
     rank = {subject: place for place, subject in enumerate(given)}
     written = np.argsort([rank.get(s, len(given)) for s in readings.subjects], kind="stable")
-    return _assemble(problem, readings, written, writer, sums, reactions, released=None)
+    account = _assemble(problem, readings, written, writer, sums, reactions, released=None)
+    refused = over_budget(
+        readings, len(account.unknowns), ("outlet",) if problem.outlet else ("feed",)
+    )
+    if refused is not None:
+        raise refused
+    return account
 
 
 def named(stream: MeteredStream) -> list[Subject]:

@@ -95,9 +95,10 @@ class _Closures:
             if not isinstance(outcome, Fitted):
                 continue
             at = rows[outcome.rows]
-            z, covariance = outcome.with_covariance()
+            z, covariance, known = outcome.with_covariance()
             everything = np.concatenate([into, out, account.feed_map, account.outlet_map])
-            hidden_of = np.split(_open(outcome, everything), [count, 2 * count])
+            is_open = _open(outcome, everything) | ((~known) @ (everything != 0).T)
+            hidden_of = np.split(is_open, [count, 2 * count], axis=1)
             open_in, open_out = hidden_of[:2]
             for name, forms, hidden in (("into", into, open_in), ("out", out, open_out)):
                 part = forms_of(z, covariance, forms)
@@ -107,7 +108,7 @@ class _Closures:
             hidden = open_in | open_out | tied
             self.values["ratio"][at] = np.where(hidden, np.nan, part.value)
             self.spread["ratio"][at] = np.where(hidden, np.nan, part.u)
-            self.unread[at] = hidden_of[2].reshape(self.unread.shape[1:])
+            self.unread[at] = hidden_of[2].reshape(len(at), *self.unread.shape[1:])
 
 
 def _open(outcome: Fitted, forms: FloatArray) -> BoolArray:
@@ -175,6 +176,17 @@ def _notes(
                     "denominator-near-zero",
                     "no closure of {element} is given: what is fed of it is within twice its"
                     " uncertainty of zero, or of what rounding leaves" + words,
+                    subject=("closure", element),
+                    facts={"element": element, **facts},
+                )
+            )
+        elif (lost := np.isnan(of.values["out"][:, e])).any():
+            words, facts = counted(lost)
+            notes.append(
+                Note(
+                    "closure-not-read",
+                    "the closure of {element} is not given: from the readings alone, feed and"
+                    " outlet unconnected, no account was found" + words,
                     subject=("closure", element),
                     facts={"element": element, **facts},
                 )

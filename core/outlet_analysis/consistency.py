@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from scipy.special import chdtri, ndtri
 
 from core.arrays import BoolArray, FloatArray
+from core.outlet_analysis.budget import most_refits
 from core.outlet_analysis.gauss_newton import (
     SINGULAR,
     Curvature,
@@ -216,12 +217,13 @@ def _drop(fit: Fit, readings: IntArray) -> Fit:
 
 def suspects(
     fitted: Fitted, seen: Examined, stated: Stated, m: int
-) -> tuple[IntArray, list[list[list[int]]]]:
+) -> tuple[IntArray, list[list[list[int]]], bool]:
     """Serial elimination: leave out the worst reading until the rest agree.
 
     A limit that the rest then contradict is left out at the end. Returns the
     number of the set that each reading is in, shape (N, m), and for each
-    sample its sets, in each the reading first that need err the least.
+    sample its sets, in each the reading first that need err the least; and
+    whether some samples had more to leave out than rounds are made.
     """
     rows = np.flatnonzero(seen.doubtful)
     sets = np.zeros((len(seen.failing), m), dtype=np.intp)
@@ -230,7 +232,8 @@ def suspects(
     z, natural, stated = fitted.z[rows], fitted.natural[rows], stated.samples(rows)
     part = seen.samples(seen.doubtful)
     # Each round leaves out a reading of every sample that goes on, so there are no more of them.
-    for _ in range(m + 1):
+    shape = (fit.measured.shape[1], z.shape[1], len(fit.stiff))
+    for _ in range(min(m + 1, most_refits(*shape))):
         if not len(rows):
             break
         members = _cannot_be_told_apart(part, stated) & part.failing[:, None]
@@ -250,10 +253,11 @@ def suspects(
         rows, fit, natural = rows[again], fit.samples(again), natural[again]
         z, stated = solution.z[again], stated.samples(again)
         part = examined.samples(again)
+    cut = len(rows) > 0
     for row, found in enumerate(chosen):
         for number, members_ in enumerate(found):
             sets[row, members_] = number + 1
-    return sets, chosen
+    return sets, chosen, cut
 
 
 def _cannot_be_told_apart(seen: Examined, stated: Stated) -> BoolArray:
@@ -283,20 +287,27 @@ class _Way:
 
 def without_suspects(
     fitted: Fitted, seen: Examined, stated: Stated, sets: list[list[int]]
-) -> tuple[tuple[WithoutSuspects, ...], int]:
+) -> tuple[tuple[WithoutSuspects, ...], int, bool]:
     """Fit a single sample anew for each way to have its readings agree.
 
     First stands the way that serial elimination took. After it come all other
     single readings without which the rest agree, by what chi-square is then;
     where no single one does, pairs; where no pair does, other choices from
     the sets that cannot be told apart. Returns no more than
-    ``MOST_ALTERNATIVES`` ways, and how many were found.
+    ``MOST_ALTERNATIVES`` ways, how many were found, and
+    whether there were more to try than are tried.
     """
     limits = tuple(np.flatnonzero(seen.contradicted[0]).tolist())
     first = tuple(members[0] for members in sets)
     redundancy = np.maximum(seen.loose.redundancy[0], seen.curvature.redundancy[0])
     proper = stated.bound[0] == 0
-    candidates = np.flatnonzero(proper & (redundancy >= SUSPICIOUS)).tolist()
+    marked = proper & (redundancy >= SUSPICIOUS)
+    most = most_refits(fitted.fit.measured.shape[1], fitted.z.shape[1], len(fitted.fit.stiff))
+    cut = np.count_nonzero(marked) > most
+    if cut:
+        size = np.where(marked, np.nan_to_num(np.abs(seen.standardised[0])), -1.0)
+        marked[np.argsort(-size, kind="stable")[most:]] = False
+    candidates = np.flatnonzero(marked).tolist()
     singles = [(k,) for k in candidates]
     beside = [(k, *limits) for k in candidates] if limits and seen.failing[0] else []
 
@@ -310,14 +321,14 @@ def without_suspects(
     alone += refitted(way for way in beside if way[0] not in enough)
     others = [way.found for way in alone if way.restored]
     if not others and not (len(set(first) - set(limits)) <= 1 and start and start[0].restored):
-        pairs = _likely_pairs(seen, stated, candidates)
+        pairs = _likely_pairs(seen, stated, candidates)[:most]
         others = [way.found for way in refitted(pairs) if way.restored]
         if not others:
-            products = islice(product(*sets), MOST_ALTERNATIVES)
+            products = islice(product(*sets), min(most, MOST_ALTERNATIVES))
             others = [way.found for way in refitted(products)]
     others.sort(key=lambda way: way.chi_square)
     found = [*(way.found for way in start), *others]
-    return tuple(found[:MOST_ALTERNATIVES]), len(found)
+    return tuple(found[:MOST_ALTERNATIVES]), len(found), bool(cut)
 
 
 def _refit(

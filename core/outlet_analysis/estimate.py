@@ -109,6 +109,8 @@ class Estimate:
         as there is room.
     ways : int
         How many such ways were found.
+    cut : bool
+        There were more to try than are tried.
     failed : Mapping of int to Fault
         By sample, counted from the first of this estimate.
     first : int
@@ -131,6 +133,7 @@ class Estimate:
     inflation: FloatArray
     without_suspects: tuple[WithoutSuspects, ...] = ()
     ways: int = 0
+    cut: bool = False
     failed: Mapping[int, Fault] = field(default_factory=dict)
     first: int = 0
     notes: tuple[Note, ...] = ()

@@ -427,10 +427,21 @@ def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     return _Rest(slopes, residual, system.size, system.gauge, inverse, covariance, step)
 
 
-def covariance_at(fit: Fit, z: FloatArray, natural: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Return z one step further on, shape (N, n), and its covariance, shape (N, n, n)."""
+def covariance_at(
+    fit: Fit, z: FloatArray, natural: FloatArray
+) -> tuple[FloatArray, FloatArray, BoolArray]:
+    """Return z one step further on, its covariance, and which unknowns have one.
+
+    Of shapes (N, n), (N, n, n) and (N, n). Unknowns without one are those that
+    double precision cannot tell apart; z and covariance are finite all the same.
+    """
     rest = _rest(fit, z, natural)
-    return z + rest.size * rest.step[:, : z.shape[1]], rest.covariance
+    n = z.shape[1]
+    known = rest.inverse[:, :n, :n].diagonal(axis1=1, axis2=2) < SINGULAR
+    covariance, step = rest.covariance, rest.size * rest.step[:, :n]
+    if not known.all():
+        covariance, step = np.nan_to_num(covariance), np.nan_to_num(step)
+    return z + step, covariance, np.asarray(known)
 
 
 def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:

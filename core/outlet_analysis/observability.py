@@ -18,6 +18,7 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fact, Fault, Readings, Subject
 from core.outlet_analysis.account import Account, fed_in, listed
+from core.outlet_analysis.budget import WORK_OF_SETTLING
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import (
@@ -399,14 +400,16 @@ def _settling(
     """
     directions = open_directions(scaled[:-1])
     per_key = scaled[-1:] @ directions
-    slopes = np.array([candidate.slope for candidate in candidates])
-    seen = slopes.reshape(len(candidates), -1) @ directions
+    if not candidates:
+        return []
+    seen = np.array([candidate.slope for candidate in candidates]) @ directions
     wanted = target @ directions
     strength = np.linalg.norm(seen, axis=1)
     # Those that see most of what is open come first; alike ones keep their order.
     order = np.argsort(-np.round(strength, 2), kind="stable")
     useful = [int(k) for k in order if strength[k] > USEFUL]
     need = np.linalg.norm(wanted)
+    tries = max(len(useful), int(WORK_OF_SETTLING / (len(target) * directions.shape[1] ** 2 + 1)))
 
     def left_open(rows: list[int]) -> FloatArray:
         """Orthonormal basis of what stays open with some candidates read."""
@@ -425,6 +428,9 @@ def _settling(
     for size in range(1, LARGEST_SET + 1):
         pool = useful if size < LARGEST_SET else useful[:20]
         for chosen in combinations(pool, size):
+            tries -= 1
+            if tries < 0:
+                break
             words = tuple(candidates[k].words for k in chosen)
             if words not in found and settles(list(chosen)):
                 found.append(words)

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
+from core.outlet_analysis.budget import NEARLY_EXACT
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
 from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, VOLUME
@@ -25,8 +26,6 @@ from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, 
 BLOCK = 2048
 """Samples estimated at once: enough to fill the processor, few enough to stay in its cache."""
 SQUARE_UNDERFLOWS = 1e-150
-NEARLY_EXACT = 1e-4
-"""Relative uncertainty below which a weight would drown the others."""
 DEPENDENT = 1e-6
 """Part of an exact reading that the other exact ones must leave for it to be one of its own."""
 AGREEMENT = 1e-8

@@ -97,7 +97,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
     out = _Results(samples, n, m)
     failed: dict[int, Fault] = {}
     without: tuple[WithoutSuspects, ...] = ()
-    ways = 0
+    ways, cut = 0, False
     for outcome in fit_block(block, _reported(account)):
         if not isinstance(outcome, Fitted):
             failed.update((int(row), outcome[1]) for row in outcome[0])
@@ -107,9 +107,10 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         seen = examine(fit, outcome.z, outcome.natural, stated)
         sets = np.zeros((len(at), m), dtype=np.intp)
         if seen.doubtful.any():
-            sets, chosen = suspects(outcome, seen, stated, m)
+            sets, chosen, cut = suspects(outcome, seen, stated, m)
             if readings.samples is None:
-                without, ways = without_suspects(outcome, seen, stated, chosen[0])
+                without, ways, more = without_suspects(outcome, seen, stated, chosen[0])
+                cut = cut or more
         out.fill(at, seen, sets, m)
         if outcome.directions.shape[1]:
             moved = np.linalg.norm(outcome.directions, axis=1)
@@ -148,6 +149,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         inflation=out.inflation,
         without_suspects=without,
         ways=ways,
+        cut=cut,
         failed=failed,
         first=rows.start,
     )

@@ -88,6 +88,21 @@ def remarks(found: Estimate) -> Iterator[Note]:
             subject=("reconciliation",),
             facts={"ways": found.ways, "shown": len(found.without_suspects)},
         )
+    elif found.cut:
+        yield Note(
+            "alternatives-not-all-given",
+            "there are too many readings to try every way to leave some of them out; what is named"
+            " and given is what was found first",
+            subject=("reconciliation",),
+        )
+    named = found.readings.suspect_set.any()
+    if named and samples is None and not found.without_suspects and not found.cut:
+        yield Note(
+            "nothing-left-without-suspects",
+            "no answer without the suspects is given: the readings that are left do not settle an"
+            " account, or none comes near them",
+            subject=("reconciliation",),
+        )
     if found.readings.contradicted.any():
         yield from _contradicted(found, counted)
     yield from _sum_notes(found, counted)

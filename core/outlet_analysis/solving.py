@@ -59,8 +59,8 @@ class Fitted:
             self.absent,
         )
 
-    def with_covariance(self) -> tuple[FloatArray, FloatArray]:
-        """The unknowns and their covariance, shapes (len(rows), n) and (len(rows), n, n)."""
+    def with_covariance(self) -> tuple[FloatArray, FloatArray, BoolArray]:
+        """The unknowns, their covariance and which have one; see :func:`covariance_at`."""
         return covariance_at(self.fit, self.z, self.natural)
 
 
@@ -153,7 +153,7 @@ def _possible(
     if not (fitted.z @ forms.T < -1e-9 * scale).any():
         yield fitted
         return
-    z, covariance = fitted.with_covariance()
+    z, covariance, _ = fitted.with_covariance()
     u = np.sqrt(np.maximum(((forms @ covariance) * forms).sum(axis=-1), 0.0))
     wrong = (z @ forms.T < -np.maximum(2 * u, 1e-9 * scale)).any(axis=1)
     if not wrong.any():

@@ -317,6 +317,20 @@ case(
     "/outlet",
 )
 case(
+    "compute-budget",
+    conversion(
+        species={f"X{i}": {"molar_mass": "40 g/mol"} for i in range(90)},
+        feed={
+            "phase": "gas",
+            "streams": [
+                {"flows": {"CO": "20 kmol/h", **{f"X{i}": "1 kmol/h" for i in range(90)}}}
+                for _ in range(5)
+            ],
+        },
+    ),
+    "/outlet",
+)
+case(
     "exact-readings-conflict",
     conversion(
         outlet__analysis__values={

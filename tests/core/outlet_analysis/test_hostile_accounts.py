@@ -7,6 +7,8 @@ import random
 
 import pytest
 
+from core.outlet_analysis.budget import most_refits
+
 CONVERSION = "/v1/conversion"
 SHIFT = {"reactions": ["CO + H2O <=> CO2 + H2"], "key": "CO"}
 
@@ -203,3 +205,94 @@ def test_readings_stand_in_the_order_in_which_they_were_given(client):
         *(f"/feed/flows/{name}" for name in given),
         *(f"/outlet/analysis/values/{name}" for name in values),
     ]
+
+
+def of_many(substances: int, streams: int) -> dict[str, object]:
+    """An account of so many substances in so many streams fed and leaving, readings scattered."""
+    names = [f"S{i}" for i in range(substances)]
+    rng = random.Random(3)  # noqa: S311
+
+    def side() -> dict[str, object]:
+        flows = [
+            {"flows": {name: f"{rng.uniform(4, 6):.4f} kmol/h" for name in names}}
+            for _ in range(streams)
+        ]
+        if streams == 1:
+            return {"phase": "gas", **flows[0]}
+        return {"phase": "gas", "streams": flows}
+
+    return {
+        "species": {name: {"molar_mass": "10 g/mol"} for name in names},
+        "reactions": ["S0 <=> S1"],
+        "key": "S0",
+        "feed": side(),
+        "outlet": side(),
+    }
+
+
+@pytest.mark.parametrize(("substances", "streams"), [(100, 12), (100, 4), (100, 3)])
+def test_an_account_beyond_the_budget_is_refused(client, substances, streams):
+    refused = post(client, of_many(substances, streams))
+    assert refused.status_code == 422
+    (fault,) = refused.get_json()["errors"]
+    assert fault["code"] == "compute-budget"
+    assert "unknowns" in fault["detail"]
+
+
+def test_the_search_for_suspects_ends_with_the_budget(client):
+    answer = post(client, of_many(90, 2)).get_json()
+    assert "too many readings to try" in noted(answer, "alternatives-not-all-given")
+    assert answer["result"]["reconciliation"]["suspects"]
+
+
+def test_what_a_refit_may_take_falls_with_the_size():
+    assert most_refits(40, 20, 0) > 10_000
+    assert most_refits(200, 100, 0) > 100
+    assert most_refits(1500, 400, 1500) == 1
+
+
+SILVER = {
+    "reactions": ["Fe^2+ + Ag+ -> Fe^3+ + Ag"],
+    "key": "Ag+",
+    "feed": {
+        "phase": "liquid",
+        "flows": {"Ag+": "63 kmol/h", "Fe^3+": "180 kmol/h", "H2O": "0 kmol/h"},
+    },
+    "outlet": {
+        "phase": "liquid",
+        "analysis": {
+            "basis": "mole",
+            "values": {"Ag": 0.00099, "H2O": "<0.05 %"},
+            "removed": ["Ag+"],
+        },
+    },
+}
+
+
+def test_a_closure_is_given_whole_or_not_at_all(client):
+    rng = random.Random(5)  # noqa: S311
+    for request in (SILVER, *(reordered(SILVER, rng) for _ in range(5))):
+        response = post(client, request)
+        assert response.status_code in (200, 422)
+        assert "NaN" not in response.get_data(as_text=True)
+        for closure in (response.get_json().get("result") or {}).get("closure", {}).values():
+            for part in filter(None, (closure or {}).values()):
+                assert part["value"] is not None
+                assert None not in part["interval"]
+
+
+def test_nothing_more_to_read_is_said(client):
+    request = {
+        "reactions": ["A -> B"],
+        "key": "A",
+        "species": {"A": {"molar_mass": "60 g/mol"}, "B": {"molar_mass": "60 g/mol"}},
+        "feed": {"phase": "liquid", "flows": {"A": "1 kmol/h"}},
+        "outlet": {
+            "phase": "liquid",
+            "flow": "1 kmol/h",
+            "analysis": {"basis": "mole", "values": {"A": "1"}, "removed": ["B"]},
+        },
+    }
+    refused = post(client, request)
+    assert refused.status_code == 422
+    assert refused.get_json()["errors"][0]["code"] == "under-determined"
