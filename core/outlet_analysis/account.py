@@ -192,7 +192,10 @@ def build_account(problem: AccountProblem) -> Account:
     readings, writer = read(
         problem.reactions, (*problem.feed, *problem.outlet), len(problem.feed), problem.series
     )
-    reactions = independent_reactions(problem.reactions.nu) if problem.outlet else []
+    of = problem.reactions
+    reactions = list(range(of.rank)) if of.rank == len(of.nu) else independent_reactions(of.nu)
+    if not problem.outlet:
+        reactions = []
     sums = analysis_sums(readings, writer)
     rank = {subject: place for place, subject in enumerate(given)}
     written = np.argsort([rank.get(s, len(given)) for s in readings.subjects], kind="stable")

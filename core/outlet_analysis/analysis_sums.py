@@ -41,9 +41,10 @@ class AnalysisSum:
         What the sum is at least and at most, without the balance.
     place : slice
         Where its values stand among the readings.
-    of_feed : bool
     complete : bool
         Of a feed: everything that it may hold has a value or was removed.
+    off : bool
+        Some sample's sum is not what it is to be.
     """
 
     stream: int
@@ -52,8 +53,8 @@ class AnalysisSum:
     least: FloatArray
     most: FloatArray
     place: slice
-    of_feed: bool
     complete: bool
+    off: bool
 
 
 def analysis_sums(readings: Readings, writer: ReadingWriter) -> tuple[AnalysisSum, ...]:
@@ -62,6 +63,7 @@ def analysis_sums(readings: Readings, writer: ReadingWriter) -> tuple[AnalysisSu
 
 
 def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
+    proper = not readings.bound.any() and bool(np.isfinite(readings.measured).all())
     for g, place in writer.analyses.items():
         stream, of_feed = writer.streams[g], g < writer.feeds
         analysis = stream.analysis
@@ -72,36 +74,41 @@ def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
         read = [i for each in weights for i in each]
         if len(set(read)) < len(read):
             continue
-        least, most = _range(readings, place, weights)
+        least, most = _range(readings, place, weights, proper)
         left = _left_of_removed(analysis, least, most, weights, writer.masses)
         names = {*read, *(removal.substance for removal in analysis.removed)}
         if analysis.balance is not None:
             names.add(analysis.balance)
         own = np.flatnonzero(writer.own[g]).tolist()
         unread = tuple(i for i in own if i not in names)
-        yield AnalysisSum(
-            g,
-            analysis,
-            unread,
-            least.sum(axis=1) + left[0],
-            most.sum(axis=1) + left[1],
-            place,
-            of_feed,
-            of_feed and analysis.balance is None and (stream.present or set()).isdisjoint(unread),
+        total = least.sum(axis=1)
+        most = (total if most is least else most.sum(axis=1)) + left[1]
+        least = total + left[0]
+        complete = (
+            of_feed
+            and analysis.balance is None
+            and (stream.present or frozenset()).isdisjoint(unread)
         )
+        # A feed with a balance that is less than nothing shows as a negative flow.
+        off = (complete or not of_feed) and bool(least.max(initial=0) > 1 + REMARKED)
+        off |= complete and bool(most.min(initial=1) < 1 - REMARKED)
+        yield AnalysisSum(g, analysis, unread, least, most, place, complete, off)
 
 
 def _range(
-    readings: Readings, place: slice, weights: list[Mapping[int, float]]
+    readings: Readings, place: slice, weights: list[Mapping[int, float]], proper: bool
 ) -> tuple[FloatArray, FloatArray]:
-    """At least and at most, what each value of an analysis may stand for, (N, k)."""
-    value, bound = readings.measured[:, place], readings.bound[:, place]
+    """At least and at most, what each value of an analysis may stand for, (N, k).
+
+    ``proper`` says that no reading is a limit or missing.
+    """
+    value = readings.measured[:, place]
     least = most = value
     if any(weight != 1 for each in weights for weight in each.values()):
         least = value / np.array([max(each.values()) for each in weights])
         most = value / np.array([min(each.values()) for each in weights])
-    there = np.isfinite(value)
-    if bound.any() or not there.all():
+    if not proper:
+        bound, there = readings.bound[:, place], np.isfinite(value)
         # What is off scale may be a wrong limit: it is held against the account instead.
         least = np.where(there & (bound == 0), least, 0.0)
         most = np.where(there & (bound != ABOVE), most, np.inf)
@@ -137,11 +144,10 @@ def sum_faults(sums: Iterable[AnalysisSum], rows: slice) -> dict[int, Fault]:
     """Return, by sample of ``rows``, the analysis whose fractions are far from adding up."""
     found: dict[int, Fault] = {}
     for of in sums:
+        if not of.off:
+            continue
         least, most = of.least[rows], of.most[rows]
-        # A feed with a balance that is less than nothing shows as a negative flow.
-        wrong = np.zeros(len(least), dtype=bool)
-        if of.complete or not of.of_feed:
-            wrong |= least > MOST
+        wrong = least > MOST
         if of.complete:
             wrong |= most < LEAST
         for row in np.flatnonzero(wrong).tolist():

@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from itertools import islice, product
 
 import numpy as np
@@ -139,9 +140,11 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
     """Test the readings proper, soft or nearly exact, with the limits let loose."""
     at_solution = curvature(fit, z, natural)
     value = fit.forms.at(at_solution.z).value
-    weight = np.array(fit.weight)
-    near = np.isfinite(fit.compliance) & (fit.compliance > 0)
-    weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
+    weight = fit.weight
+    if len(fit.stiff):
+        weight = np.array(weight)
+        near = np.isfinite(fit.compliance) & (fit.compliance > 0)
+        weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
     limited = stated.bound != 0
     contradicted = np.zeros_like(limited)
     loose = at_solution
@@ -162,12 +165,13 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
     standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
     chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
     # A singular sample has no number here; it is refused for its inflation.
-    freedom = np.rint(np.nan_to_num(redundancy.sum(axis=1))).astype(np.intp)
-    limit_of = chdtri(np.arange(1, fit.measured.shape[1] + 1), LEVEL)
-    limit = np.where(freedom > 0, limit_of[freedom - 1], np.nan)
+    total = redundancy.sum(axis=1)
+    freedom = np.rint(np.where(np.isnan(total), 0.0, total)).astype(np.intp)
+    limit = np.where(freedom > 0, _limits(fit.measured.shape[1])[freedom - 1], np.nan)
     tests = testable.sum(axis=1)
     largest = np.where(testable, np.abs(standardised), 0.0).max(axis=1, initial=0.0)
-    failing = (freedom > 0) & ((chi_square > limit) | (largest > sidak_limit(tests)))
+    of_tests = _sidak_limits(fit.measured.shape[1])[tests]
+    failing = (freedom > 0) & ((chi_square > limit) | (largest > of_tests))
     return Examined(
         at_solution,
         value,
@@ -201,6 +205,22 @@ def sidak_limit(tests: IntArray) -> FloatArray:
     """
     each = -np.expm1(np.log1p(-LEVEL) / np.maximum(tests, 1))
     return np.asarray(-ndtri(each / 2))
+
+
+@lru_cache(maxsize=64)
+def _limits(most: int) -> FloatArray:
+    """Limits of chi-square for 1, 2 and so on up to ``most`` degrees of freedom; read-only."""
+    limits = np.asarray(chdtri(np.arange(1, most + 1), LEVEL), dtype=np.float64)
+    limits.setflags(write=False)
+    return limits
+
+
+@lru_cache(maxsize=64)
+def _sidak_limits(most: int) -> FloatArray:
+    """Limits of each of 0, 1 and so on up to ``most`` tests; read-only."""
+    limits = sidak_limit(np.arange(most + 1))
+    limits.setflags(write=False)
+    return limits
 
 
 def _drop(fit: Fit, readings: IntArray) -> Fit:

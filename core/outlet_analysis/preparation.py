@@ -119,7 +119,7 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
     sigma = np.concatenate([sigma, 0 * column], axis=1)
     active = np.concatenate([active, ~flowing[:, None]], axis=1)
     bound = np.concatenate([bound, np.zeros((len(bound), 1), dtype=np.int8)], axis=1)
-    limit = np.concatenate([limit, 0 * column], axis=1)
+    limit = np.concatenate([limit, column], axis=1) if bound.any() else measured
 
     forms = readings.forms.samples(rows).through(account.stream_map)
     constants = forms.constants
@@ -203,15 +203,17 @@ def groups(block: Block) -> Iterator[Group | tuple[IntArray, Fault]]:
     if not len(kind):
         return
     if (kind == kind[0]).all():
-        yield _group(block, np.arange(len(kind)))
+        yield _group(block, np.arange(len(kind)), kind[0])
         return
     _, which = np.unique(kind, axis=0, return_inverse=True)
     which = which.reshape(-1)
     for label in range(int(which.max()) + 1):
-        yield _group(block, np.flatnonzero(which == label))
+        rows = np.flatnonzero(which == label)
+        yield _group(block, rows, kind[rows[0]])
 
 
-def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
+def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArray, Fault]:
+    """Put together the fit of samples; ``kind`` is 1 of an exact reading, 2 of a nearly exact."""
     whole = len(rows) == len(block.measured)
     if not whole:
         forms = block.forms
@@ -228,7 +230,7 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
             block.nominal[rows],
         )
     slopes, right, u = linearised(block)
-    exact = np.flatnonzero(block.exact[0])
+    exact = np.flatnonzero(kind == 1)
     kept, dependent = exact, np.empty(0, dtype=np.intp)
     if len(exact):
         found = _independent(block, slopes[0], right[0], exact)
@@ -236,7 +238,7 @@ def _group(block: Block, rows: IntArray) -> Group | tuple[IntArray, Fault]:
             return rows, found
         kept, dependent = found
 
-    nearly = np.flatnonzero(block.nearly_exact[0])
+    nearly = np.flatnonzero(kind == 2)
     stiff, soft = kept, block.active
     if len(nearly):
         stiff = np.union1d(kept, nearly).astype(np.intp)

@@ -27,6 +27,7 @@ from core.streams.metered import Analysis, FlowReading, Measurement, MeteredStre
 BELOW: Final = -1
 ABOVE: Final = 1
 """Kinds of limit, sample by sample; 0 is a reading proper."""
+BOUNDS = {None: 0, "below": BELOW, "above": ABOVE}
 
 FRACTIONS = ("mole", "mass", "volume")
 """Bases whose values are parts of a whole."""
@@ -139,7 +140,6 @@ class ReadingWriter:
         self.count = len(self.reactions.substances)
         self.masses = self.reactions.molar_masses
         self.ones = np.ones(self.count)
-        self.unit = np.eye(self.count)
         self.width = len(self.streams) * (self.count + FURTHER)
         self.base_index: dict[tuple[int | str, ...], int] = {}
         self.own = [self.own_phase(stream) for stream in self.streams]
@@ -273,7 +273,7 @@ class ReadingWriter:
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
-            weights = weights * self.unit[reading.substance]
+            weights = self.component({reading.substance: 1.0}, weights)
         if reading.as_analysed:
             weights = self.sampled(g, weights)
         of_volume = reading.kind == "volume"
@@ -353,7 +353,10 @@ class ReadingWriter:
 
     def counted(self, g: int, analysis: Analysis, shares: Mapping[int, float]) -> FloatArray:
         """Return the form that a value of an analysis counts."""
-        return self.flows(g, self.sampled(g, self.component(shares, self.weights(analysis))))
+        weights = self.component(shares, self.weights(analysis))
+        if any(removal.substance in shares for removal in analysis.removed):
+            weights = self.sampled(g, weights)
+        return self.flows(g, weights)
 
     def weights(self, analysis: Analysis) -> FloatArray:
         """Weights of the substances in an analysis: by amount, or by mass."""
@@ -437,7 +440,7 @@ class ReadingWriter:
                 exponents[row, base] += power
         constants = (
             np.array(self.constants, dtype=float)
-            if all(np.ndim(c) == 0 for c in self.constants)
+            if not any(isinstance(c, np.ndarray) for c in self.constants)
             else np.stack(np.broadcast_arrays(*self.constants), axis=-1).astype(float)
         )
         return Forms(
@@ -476,15 +479,13 @@ def read(
     n, m = samples or 1, len(writer.measurements)
     if samples == 0:
         n = 0
-    measured, u = np.empty((n, m)), np.empty((n, m))
-    bound = np.zeros((n, m), dtype=np.int8)
-    for column, reading in enumerate(writer.measurements):
+    one = [(of.value, of.u, BOUNDS[of.bound]) for of in writer.measurements]
+    stated = np.array(one, dtype=float).reshape(m, 3).T
+    measured, u, kind = (np.repeat(row[None], n, axis=0) for row in stated)
+    bound = kind.astype(np.int8)
+    for column, reading in enumerate(writer.measurements) if series else ():
         found = series.get(reading.subject)
-        if found is None:
-            measured[:, column] = reading.value
-            u[:, column] = reading.u
-            bound[:, column] = {None: 0, "below": BELOW, "above": ABOVE}[reading.bound]
-        else:
+        if found is not None:
             measured[:, column] = found.value
             u[:, column] = found.u
             bound[:, column] = 0 if found.bound is None else found.bound

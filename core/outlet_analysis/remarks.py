@@ -271,16 +271,16 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     rows = slice(found.first, found.first + len(found.z))
     good = np.isfinite(found.chi_square)
     for of in account.sums:
+        if not (of.off or of.unread):
+            continue
         subject = of.analysis.subject
         least, most = of.least[rows], of.most[rows]
-        if least.max(initial=0) > 1 + REMARKED or most.min(initial=1) < 1 - REMARKED:
-            off = np.where(least > 1, least - 1, np.minimum(most - 1, 0))
-            wide = good & (
-                np.abs(off) > np.maximum(REMARKED, COVERAGE * sum_u(account.readings, of, rows))
-            )
-            if not of.complete:
-                # Part of a sample, or all of it but a balance: less than the whole is right.
-                wide &= (off > 0) & (not of.of_feed)
+        if of.off:
+            # Of part of a sample, or all of it but a balance, less than the whole is right.
+            below = np.minimum(most - 1, 0) if of.complete else 0.0
+            off = np.where(least > 1, least - 1, below)
+            u = sum_u(account.readings, of, rows)
+            wide = good & (np.abs(off) > np.maximum(REMARKED, COVERAGE * u))
             if wide.any():
                 words, facts = counted(wide)
                 yield Note(
@@ -334,7 +334,7 @@ def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     count = len(names)
     for g, stream in enumerate(account.streams):
         analysis = stream.analysis
-        if analysis is None:
+        if analysis is None or not any(removal.residual for removal in analysis.removed):
             continue
         left = 1 - sum(removal.residual for removal in analysis.removed)
         gone = [removal.substance for removal in analysis.removed]
