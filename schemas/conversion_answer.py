@@ -88,6 +88,7 @@ class AlternativeSchema(OpenSchema):
 
     removed = fields.List(fields.String(), required=True)
     conversion = number(required=True)
+    chi_square = number("Of what is left.")
 
 
 class WithoutSuspectSchema(AlternativeSchema):
@@ -339,7 +340,7 @@ class _Writer:
             "chi_square": self._plain(found.chi_square),
             "limit": self._plain(found.limit) if checked else None,
             "p_value": self._plain(found.p_value) if checked else None,
-            "consistent": not found.inconsistent if checked else None,
+            "consistent": not found.inconsistent if checked or found.inconsistent else None,
             "readings": [self._reading(k) for k in range(len(pointers))],
             "suspects": [sets[number_] for number_ in sorted(sets)],
         }
@@ -386,8 +387,11 @@ class _Writer:
             {
                 "removed": [self.edge.place(subjects[k]).pointer for k in removed],
                 "conversion": self._number(conversion),
+                "chi_square": self._plain(way.chi_square),
             }
-            for removed, conversion in self.results.without_suspects
+            for way, (removed, conversion) in zip(
+                self.found.without_suspects, self.results.without_suspects, strict=True
+            )
         ]
         first, *others = ways
         return {**first, "alternatives": others} if others else first
