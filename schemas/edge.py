@@ -8,7 +8,6 @@ in the caller's own words.
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
@@ -34,7 +33,8 @@ from schemas.units import (
 Json = dict[str, Any]
 
 SMALLEST = 1e-60
-"""Sizes in SI units below this, or above its inverse, are mistakes; products of them overflow."""
+BIGGEST = 1 / SMALLEST
+"""Sizes in SI units below the one or above the other are mistakes; products of them overflow."""
 
 OFTEN_GAUGE = frozenset({"mmH2O", "cmH2O", "mH2O", "inH2O", "psi"})
 """Units of pressure in which a plant's instruments most often show what is above the atmosphere."""
@@ -314,11 +314,11 @@ class RequestReader:
         value = to_si(raw.value, unit, atmospheric_pressure=self.atmospheric_pressure)
         # A number that is too small may have become zero on its way to SI.
         stated = value or (plain and raw.value)
-        if (stated and not SMALLEST < abs(value) < 1 / SMALLEST) or abs(raw.value) > LARGEST:
+        if (stated and not SMALLEST < abs(value) < BIGGEST) or abs(raw.value) > LARGEST:
             self.fault("impossible-value", pointer, _beyond(raw))
             return None
-        if not _within(value, above, at_least):
-            self.fault("impossible-value", pointer, _out_of_range(raw, dimension, above, at_least))
+        if (above is not None and value <= above) or (at_least is not None and value < at_least):
+            self.fault("impossible-value", pointer, _out_of_range(raw, dimension, above))
             return None
         if dimension == "pressure":
             self._remark_on_pressure(raw, unit, subject)
@@ -385,7 +385,7 @@ class RequestReader:
             pairs = zip(unit.exponents, exponents, strict=True)
             if _plain(unit) and all(abs(a - b) < 1e-9 for a, b in pairs):
                 value = to_si(raw.value, unit)
-                if SMALLEST < value < 1 / SMALLEST and raw.value <= LARGEST:
+                if SMALLEST < value < BIGGEST and raw.value <= LARGEST:
                     return spelt, float(value)
                 self.fault("impossible-value", pointer, f"found {raw.text!r}; above zero is needed")
                 return None
@@ -510,20 +510,9 @@ def _allowed(text: str, dimensions: tuple[str, ...]) -> tuple[Unit, str | None, 
     return unit, _dimension(unit, dimensions), _plain(unit)
 
 
-def _within(value: float, above: float | None, at_least: float | None) -> bool:
-    if not math.isfinite(value):
-        return False
-    return (above is None or value > above) and (at_least is None or value >= at_least)
-
-
-def _out_of_range(
-    raw: RawQuantity, dimension: str, above: float | None, at_least: float | None
-) -> str:
-    if above is not None:
-        return f"found {raw.text!r}; a {words(dimension)} above zero (absolute) is needed"
-    if at_least is not None:
-        return f"found {raw.text!r}; a {words(dimension)} of zero or more is needed"
-    return f"found {raw.text!r}, which no calculation here can hold"
+def _out_of_range(raw: RawQuantity, dimension: str, above: float | None) -> str:
+    wanted = "of zero or more" if above is None else "above zero (absolute)"
+    return f"found {raw.text!r}; a {words(dimension)} {wanted} is needed"
 
 
 def _wrong_dimension(

@@ -42,8 +42,10 @@ def words_of(batch: bool) -> StreamWords:
 
 def is_batch(document: Json) -> bool:
     """Whether a stream document states a batch: amounts, or concentrations in a volume."""
-    streams = document.get("streams", (document,))
-    return any("amounts" in stream or "volume" in stream for stream in streams)
+    for stream in document.get("streams", (document,)):
+        if "amounts" in stream or "volume" in stream:
+            return True
+    return False
 
 
 def read_feed(

@@ -94,10 +94,11 @@ def conversion_range(reactions: ReactionSet, key: int, flows: FloatArray) -> Con
 def _one_reaction(reactions: ReactionSet, key: int, flows: FloatArray) -> ConversionRange:
     nu = reactions.nu[0]
     forward, reactant, backward, product = extent_limits(nu, flows)
-    per_extent = float(-nu[key] / flows[key])
+    coefficient = float(nu[key])
+    per_extent = -coefficient / float(flows[key])
     largest = forward * per_extent
     # Of several substances that run out together the key is the one to name.
-    if nu[key] < 0 and largest >= 1 - 1e-12:
+    if coefficient < 0 and largest >= 1 - 1e-12:
         reactant, largest = key, 1.0
     if not reactions.reactions[0].reversible:
         return ConversionRange(largest, 0.0, reactant, None)
