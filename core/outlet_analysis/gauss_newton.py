@@ -269,6 +269,7 @@ def _step(fit: Fit, found: Evaluation, sizes: FloatArray, damping: FloatArray) -
     return _Step(step, sound, decrement, relative, gain, hard, met)
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     """Fit every sample, each to its own convergence.
 
@@ -284,7 +285,7 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     -------
     Solution
         Samples that fail (singular, outside, out of steps) are not converged;
-        they do not touch the others.
+        they do not touch the others. A step that overflows is not taken.
     """
     z_all = np.array(start)
     converged = np.zeros(len(z_all), dtype=bool)
