@@ -7,7 +7,7 @@ from functools import lru_cache
 from typing import Any
 
 import orjson
-from flask import Blueprint, Response, request
+from flask import Blueprint, Request, Response, request
 from werkzeug.datastructures import MIMEAccept
 from werkzeug.http import parse_accept_header
 
@@ -31,11 +31,13 @@ def calculation(
 
     def serve(answer: Callable[[Any], Answer]) -> Callable[[Any], Answer]:
         def view() -> Response:
-            media = negotiate(*operation.media_types)
-            pretty = pretty_asked()
-            document, body = read_json(request)
+            # Itself, not Flask's stand-in for it, which looks it up anew for each attribute.
+            asked = request._get_current_object()  # type: ignore[attr-defined]
+            media = negotiate(*operation.media_types, asked=asked)
+            pretty = pretty_asked(asked)
+            document, body = read_json(asked)
             name, of = digest(document, body)
-            logs.annotate(digest=name)
+            logs.annotate(asked, digest=name)
             answered = answer(document)
             if media == CSV and answered.table is not None:
                 response = _respond(to_csv(answered.table()).encode(), f"{CSV}; charset=utf-8")
@@ -65,7 +67,7 @@ def json_response(document: Any, *, pretty: bool = False) -> Response:
     return _respond(orjson.dumps(document, option=option), JSON)
 
 
-def negotiate(*offered: str) -> str:
+def negotiate(*offered: str, asked: Request = request) -> str:
     """Return the media type to answer in; the first offered where the client does not mind.
 
     Raises
@@ -73,13 +75,13 @@ def negotiate(*offered: str) -> str:
     HttpFault
         406, when nothing offered is accepted.
     """
-    accept = request.environ.get("HTTP_ACCEPT")
+    accept = asked.environ.get("HTTP_ACCEPT")
     chosen = _best(accept, offered) if accept else offered[0]
     if chosen is None:
         raise HttpFault(
             406,
             "not-acceptable",
-            f"found Accept: {str(request.accept_mimetypes)[:80]}; this route answers"
+            f"found Accept: {str(asked.accept_mimetypes)[:80]}; this route answers"
             f" {' or '.join(offered)}",
             header="Accept",
         )
@@ -117,7 +119,7 @@ def refuse_parameters(*known: str) -> None:
             )
 
 
-def pretty_asked() -> bool:
+def pretty_asked(asked: Request = request) -> bool:
     """Return whether ``?pretty=1`` was asked for; other parameters are refused.
 
     Raises
@@ -125,10 +127,10 @@ def pretty_asked() -> bool:
     HttpFault
         400, for a parameter that the route does not know.
     """
-    if not request.query_string:
+    if not asked.query_string:
         return False
     refuse_parameters("pretty")
-    pretty = request.args.getlist("pretty")
+    pretty = asked.args.getlist("pretty")
     if any(value not in ("0", "1") for value in pretty) or len(pretty) > 1:
         raise HttpFault(
             400,

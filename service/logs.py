@@ -159,9 +159,9 @@ _LINE = "molwright.log_line"
 """Where the WSGI environment holds the line in the making."""
 
 
-def annotate(**fields: str) -> None:
+def annotate(asked: flask.Request = flask.request, /, **fields: str) -> None:
     """Add ``fields`` to the log line of the request at hand: a digest, an error code."""
-    flask.request.environ.setdefault(_LINE, {}).update(fields)
+    asked.environ.setdefault(_LINE, {}).update(fields)
 
 
 _output = _Output()
