@@ -110,14 +110,18 @@ def _several_reactions(reactions: ReactionSet, key: int, flows: FloatArray) -> C
     # Only here: the import costs a quarter of a second and one reaction needs none of it.
     from scipy.optimize import linprog
 
-    nu = reactions.nu
-    scale = float(flows.max())
-    bounds = [(None if r.reversible else 0.0, None) for r in reactions.reactions]
+    # In an order of names, so that what runs out first does not hang on the request's order.
+    order = sorted(range(len(reactions.names)), key=lambda i: reactions.names[i])
+    turn = sorted(range(len(reactions.reactions)), key=lambda j: reactions.reactions[j].id)
+    nu, own_key = reactions.nu[np.ix_(turn, order)], order.index(key)
+    fed = flows[order]
+    scale = float(fed.max())
+    bounds = [(None if reactions.reactions[j].reversible else 0.0, None) for j in turn]
     ends: list[float] = []
     short: list[int | None] = []
     for sign in (1.0, -1.0):
         solved = linprog(
-            sign * nu[:, key], A_ub=-nu.T, b_ub=flows / scale, bounds=bounds, method="highs"
+            sign * nu[:, own_key], A_ub=-nu.T, b_ub=fed / scale, bounds=bounds, method="highs"
         )
         if not solved.success or solved.x is None:
             raise refuse(
@@ -126,10 +130,10 @@ def _several_reactions(reactions: ReactionSet, key: int, flows: FloatArray) -> C
                 "the extents that the feed allows have no end: reactions that undo each other"
                 " without a balance were given; state each conversion of matter once",
             )
-        ends.append(float(-(nu[:, key] @ solved.x) * scale / flows[key]))
-        short.append(
-            _exhausted(np.asarray(solved.ineqlin.marginals), np.asarray(solved.slack), key)
-        )
+        ends.append(float(-(nu[:, own_key] @ solved.x) * scale / flows[key]))
+        marginals, slack = solved.ineqlin.marginals, solved.slack
+        found = _exhausted(np.asarray(marginals), np.asarray(slack), own_key)
+        short.append(None if found is None else order[found])
     return ConversionRange(ends[0], ends[1], short[0], short[1])
 
 
