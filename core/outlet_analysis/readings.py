@@ -150,11 +150,14 @@ class ReadingWriter:
         """Weights 1 of the substances that a total of the stream counts, else 0.
 
         What is stated to be of another phase travels with the stream but is
-        not part of it, unless its own analysis reads it.
+        not part of it, unless its own analysis reads it or makes up its
+        balance with it.
         """
         read = set[int]()
         if stream.analysis is not None:
             read.update(*(component.weights for component in stream.analysis.components))
+            if stream.analysis.balance is not None:
+                read.add(stream.analysis.balance)
         return np.array(
             [
                 1.0 if substance.phase in (None, stream.phase) or i in read else 0.0

@@ -301,6 +301,33 @@ def test_nitrobenzene_from_the_mass_fractions_of_the_organic_phase(client: Flask
     assert value(answer["conversion"]) == pytest.approx(0.9519902628835846, abs=1e-9)
 
 
+def test_a_solid_that_makes_up_the_balance_of_a_slurry_is_part_of_the_sample(client: FlaskClient):
+    # Own closed form, no publication (common practice): half of 1 A becomes the solid S, in 9 W.
+    answer = result(
+        client,
+        CONVERSION,
+        {
+            "species": {
+                "A": {"molar_mass": "60 g/mol"},
+                "S": {"molar_mass": "60 g/mol", "phase": "solid"},
+                "W": {"molar_mass": "18 g/mol"},
+            },
+            "reactions": ["A -> S"],
+            "key": "A",
+            "feed": {"phase": "liquid", "flows": {"A": "1 kmol/h", "W": "9 kmol/h"}},
+            "outlet": {
+                "phase": "liquid",
+                "analysis": {
+                    "basis": "mole",
+                    "values": {"A": "5 %", "W": "90 %"},
+                    "balance": "S",
+                },
+            },
+        },
+    )
+    assert value(answer["conversion"]) == pytest.approx(0.5, abs=1e-6)
+
+
 def test_wet_gas_from_its_dry_analysis(client: FlaskClient):
     # R. M. Felder, R. W. Rousseau, Elementary Principles of Chemical Processes, 3rd ed., Wiley,
     # 2000, Example 4.8-1 (from memory): dry gas 65 N2, 14 CO2, 11 CO, 10 O2; 7 % water in the wet.
