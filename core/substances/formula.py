@@ -80,11 +80,17 @@ def shown(text: str) -> str:
     return text if len(text) <= MAX_LENGTH else text[: MAX_LENGTH - 1] + "…"
 
 
-def split_state(text: str) -> tuple[str, Phase | None]:
-    """Take the state of aggregation off the end of a name.
+_SUBSCRIPTS = str.maketrans("₀₁₂₃₄₅₆₇₈₉", "0123456789")
 
-    ``H2O(l)`` gives ``("H2O", "liquid")``, ``CO2`` gives ``("CO2", None)``.
+
+def split_state(text: str) -> tuple[str, Phase | None]:
+    """Take the state of aggregation off the end of a name, and write it plainly.
+
+    ``H2O(l)`` gives ``("H2O", "liquid")``, ``CO2`` gives ``("CO2", None)``, and
+    so does ``CO₂``: subscript digits are no other name.
     """
+    if not text.isascii():
+        text = text.translate(_SUBSCRIPTS)
     found = _STATE.search(text, max(len(text) - 5, 1)) if text.endswith(")") else None
     if found is None:
         return text, None

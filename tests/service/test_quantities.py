@@ -201,6 +201,16 @@ def test_many_unknown_fields_take_no_time(client):
     assert response.get_json()["errors_total"] == 60000
 
 
+def test_subscript_digits_make_no_other_substance(client):
+    written = changed(SHIFT, reactions=["CO + H₂O ⇌ CO₂ + H₂"])
+    base = result(client, TABLE, SHIFT)
+    other = result(client, TABLE, written)
+    assert list(other["species"]) == list(base["species"])
+    assert value(other["species"]["H2O"]["theta"]) == value(base["species"]["H2O"]["theta"])
+    both = changed(SHIFT, feed__flows={**SHIFT["feed"]["flows"], "H₂O": "1 mol/s"})
+    assert_refused(post(client, TABLE, both), 422, "name-clash", "/feed/flows/H₂O")
+
+
 def test_names_with_slashes_have_pointers_that_lead_to_them(client):
     request = changed(
         SHIFT,
