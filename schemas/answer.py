@@ -6,7 +6,6 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from core.records import record
 from schemas.edge import Json
 
 
@@ -22,7 +21,7 @@ class Table:
         return {"columns": dict(self.columns), "units": dict(self.units)}
 
 
-@record()
+@dataclass(frozen=True)
 class Answer:
     """A result in the request's units, with what its reader must know.
 

@@ -83,7 +83,7 @@ class Scale:
     offset: float
 
 
-@record()
+@dataclass(frozen=True)
 class EdgeMap:
     """From core subjects to places of the request, and from SI to its units."""
 

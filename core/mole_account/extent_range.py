@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 import numpy as np
 
 from core.arrays import FloatArray
 from core.errors import refuse
 from core.reactions.reaction_set import ReactionSet
-from core.records import record
 
 
-@record()
+@dataclass(frozen=True)
 class ConversionRange:
     """Conversions of the key that leave no flow negative.
 

@@ -26,7 +26,6 @@ from core.mole_account.expressions import (
 )
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.reactions.reaction_set import ReactionSet
-from core.records import record
 from core.streams.stream import Stream, phase_sum
 
 Hold = Literal["volume", "pressure"]
@@ -36,7 +35,7 @@ ROUNDING = 1e-12
 """Share of the feed by which a flow may fall below zero: rounding of a limit hit exactly."""
 
 
-@record()
+@dataclass(frozen=True)
 class OutletConditions:
     """Conditions of the outlet; None where they are those of the inlet."""
 
@@ -45,7 +44,7 @@ class OutletConditions:
     compressibility: float | None = None
 
 
-@record(eq=False)
+@dataclass(frozen=True, eq=False)
 class TableProblem:
     """What the table is asked for.
 
@@ -75,7 +74,7 @@ class TableProblem:
     hold: Hold = "volume"
 
 
-@record(eq=False)
+@dataclass(frozen=True, eq=False)
 class States:
     """The account at each conversion or set of extents asked for; n states.
 
@@ -133,7 +132,7 @@ class States:
         return np.where(self.in_phase, self.flows, np.nan)
 
 
-@record(eq=False)
+@dataclass(frozen=True, eq=False)
 class StoichiometricTable:
     """The table.
 

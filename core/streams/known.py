@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 from functools import lru_cache
 from itertools import compress
 
@@ -12,7 +13,6 @@ from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Note, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
-from core.records import record
 from core.streams.metered import Measurement, MeteredStream
 from core.streams.stream import Stream, StreamPhase, phase_sum
 
@@ -25,7 +25,7 @@ CONTRADICTION = 0.01
 """Relative difference between a stated volume and that of the gas law which is refused."""
 
 
-@record()
+@dataclass(frozen=True)
 class Conditions:
     """What is stated of the sum of the streams: K, Pa, -, m3/s (batch: m3), kg/m3."""
 

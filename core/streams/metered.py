@@ -7,6 +7,7 @@ readings best is found by :mod:`core.outlet_analysis`.
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import dataclass
 from typing import Literal
 
 from core.errors import Subject
@@ -44,7 +45,7 @@ class Measurement:
     bound: Literal["below", "above"] | None = None
 
 
-@record()
+@dataclass(frozen=True)
 class Removal:
     """A substance taken out of the sample before the analyser.
 
@@ -56,7 +57,7 @@ class Removal:
     residual: float = 0.0
 
 
-@record()
+@dataclass(frozen=True)
 class Component:
     """One value of an analysis: a substance, or a lump of several under one peak."""
 
@@ -65,7 +66,7 @@ class Component:
     measurement: Measurement
 
 
-@record()
+@dataclass(frozen=True)
 class Analysis:
     """An analysis as the analyser saw it.
 
@@ -106,7 +107,7 @@ class FlowReading:
     molar_volume: float | None = None
 
 
-@record()
+@dataclass(frozen=True)
 class MeteredStream:
     """One metered stream of the feed or the outlet.
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from functools import cached_property
 from typing import Literal
 
@@ -9,7 +10,6 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
-from core.records import record
 
 StreamPhase = Literal["gas", "liquid"]
 
@@ -22,7 +22,7 @@ def phase_sum(flows: FloatArray, in_phase: BoolArray) -> FloatArray:
     return total
 
 
-@record(eq=False)
+@dataclass(frozen=True, eq=False)
 class Stream:
     """Flows of every substance of the account, and the conditions they are at.
 
