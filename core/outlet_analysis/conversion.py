@@ -11,7 +11,7 @@ from typing import Literal
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Note, refuse
+from core.errors import Fact, Note, refuse
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.closure import Closures, element_closures
 from core.outlet_analysis.estimate import Estimate
@@ -315,60 +315,55 @@ def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
     names, key = account.problem.reactions.names, account.problem.key
     counted = counting(account.readings.samples)
     estimated = np.isfinite(found.chi_square)
+    key_named: dict[str, Fact] = {"key": names[key]}
     notes: list[Note] = []
-    no_feed = estimated & np.isnan(results.conversion.value)
-    if no_feed.any():
-        words, facts = counted(no_feed)
-        notes.append(
-            Note(
-                "denominator-near-zero",
-                "no conversion or yield is given: the flow of {key} fed is within twice its"
-                " uncertainty of zero, or of what rounding leaves" + words,
-                severity="warning",
-                subject=("conversion",),
-                facts={"key": names[key], **facts},
-            )
-        )
+
+    def remark(
+        marks: BoolArray,
+        code: str,
+        detail: str,
+        subject: str,
+        *,
+        severity: str = "info",
+        named: Mapping[str, Fact] = key_named,
+    ) -> None:
+        if marks.any():
+            words, facts = counted(marks)
+            notes.append(Note(code, detail + words, severity, (subject,), {**named, **facts}))
+
+    remark(
+        estimated & np.isnan(results.conversion.value),
+        "denominator-near-zero",
+        "no conversion or yield is given: the flow of {key} fed is within twice its"
+        " uncertainty of zero, or of what rounding leaves",
+        "conversion",
+        severity="warning",
+    )
     of = results.yields
-    given = ~np.isnan(of.factors)
-    lost = np.isnan(of.selectivities.value) & given
-    no_change = estimated & lost.any(axis=-1)
-    if no_change.any():
-        words, facts = counted(no_change)
-        notes.append(
-            Note(
-                "denominator-near-zero",
-                "no selectivity is given: the amount of {key} converted is within twice its"
-                " uncertainty of zero, or of what rounding leaves" + words,
-                subject=("selectivities",),
-                facts={"key": names[key], **facts},
-            )
-        )
+    lost = np.isnan(of.selectivities.value) & ~np.isnan(of.factors)
+    remark(
+        estimated & lost.any(axis=-1),
+        "denominator-near-zero",
+        "no selectivity is given: the amount of {key} converted is within twice its"
+        " uncertainty of zero, or of what rounding leaves",
+        "selectivities",
+    )
     if results.key_consumed_by is not None and results.key_produced_by is not None:
         shares = (results.key_consumed_by.value, results.key_produced_by.value)
-        unshared = estimated & np.all([np.isnan(share).all(axis=-1) for share in shares], axis=0)
-        if unshared.any():
-            words, facts = counted(unshared)
-            notes.append(
-                Note(
-                    "denominator-near-zero",
-                    "no shares of the reactions are given: what they consume of {key} is within"
-                    " twice its uncertainty of zero, or of what rounding leaves" + words,
-                    subject=("key_consumed_by",),
-                    facts={"key": names[key], **facts},
-                )
-            )
-    poor = estimated & (np.nan_to_num(results.conversion.u) > POORLY_KNOWN)
-    if poor.any():
-        words, facts = counted(poor)
-        notes.append(
-            Note(
-                "conversion-poorly-known",
-                "the readings determine the conversion only loosely; its uncertainty counts"
-                " more than its value" + words,
-                severity="warning",
-                subject=("conversion",),
-                facts=facts,
-            )
+        remark(
+            estimated & np.all([np.isnan(share).all(axis=-1) for share in shares], axis=0),
+            "denominator-near-zero",
+            "no shares of the reactions are given: what they consume of {key} is within"
+            " twice its uncertainty of zero, or of what rounding leaves",
+            "key_consumed_by",
         )
+    remark(
+        estimated & (np.nan_to_num(results.conversion.u) > POORLY_KNOWN),
+        "conversion-poorly-known",
+        "the readings determine the conversion only loosely; its uncertainty counts"
+        " more than its value",
+        "conversion",
+        severity="warning",
+        named={},
+    )
     return notes
