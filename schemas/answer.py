@@ -4,9 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from schemas.edge import Json
+
+if TYPE_CHECKING:
+    from schemas.page import Page
 
 
 @dataclass(frozen=True)
@@ -35,6 +38,8 @@ class Answer:
         Where packaged data in it come from.
     table : callable or None
         Makes the same result as a table, where the route offers one.
+    page : callable or None
+        Makes the same result as a page, where the route offers one.
     """
 
     result: Json
@@ -43,6 +48,7 @@ class Answer:
     method: str
     data: str
     table: Callable[[], Table] | None = None
+    page: Callable[[], Page] | None = None
 
     def document(self, release: str, digest: str, digest_of: str) -> Json:
         """Return the answer's document."""

@@ -13,7 +13,7 @@ from werkzeug.http import parse_accept_header
 
 from schemas.answer import Answer
 from schemas.contract import Operation
-from service import __version__, logs
+from service import __version__, logs, pages
 from service.body import read_json
 from service.digest import digest
 from service.problem_details import HttpFault
@@ -45,7 +45,11 @@ def calculation(
                 response.headers["Molwright-Request-Digest"] = name
                 response.headers["Molwright-Release"] = __version__
                 return response
-            return json_response(answered.document(__version__, name, of), pretty=pretty)
+            told = answered.document(__version__, name, of)
+            if media == HTML and answered.page is not None:
+                page = pages.answer_page(answered, answered.page(), told["provenance"])
+                return pages.respond(page)
+            return json_response(told, pretty=pretty)
 
         blueprint.add_url_rule(
             operation.path, operation.name, view, methods=["POST"], provide_automatic_options=False

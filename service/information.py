@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-import html
 import re
 from functools import cache
 from typing import Any
@@ -14,7 +13,7 @@ from core.notes import NOTES
 from core.problems import CATALOGUE, Entry
 from schemas.contract import OPERATIONS, published_text
 from schemas.examples import paste
-from service import __version__
+from service import __version__, pages
 from service.endpoint import HTML, JSON, json_response, negotiate, pretty_asked, refuse_parameters
 from service.problem_details import HttpFault
 from service.statuses import STATUSES
@@ -117,40 +116,10 @@ def explain(code: str) -> Response:
 def _page(code: str, problem: Entry | None, note: Entry | None) -> Response:
     parts = []
     if problem is not None:
-        parts.append(_part(code, problem, f"answered with HTTP status {STATUSES[code]}"))
+        parts.append((problem, f"answered with HTTP status {STATUSES[code]}"))
     if note is not None:
-        parts.append(_part(code, note, "a note in answers"))
-    response = Response(PAGE.format(code=html.escape(code), parts="\n".join(parts)), mimetype=HTML)
-    response.headers["Content-Security-Policy"] = "default-src 'none'; style-src 'unsafe-inline'"
-    response.headers["Vary"] = "Accept"
-    return response
-
-
-def _part(code: str, entry: Entry, where: str) -> str:
-    return f"""<h1>{html.escape(entry.title)}</h1>
-<p><code>{html.escape(code)}</code>, {where}</p>
-<p>{html.escape(entry.text)}</p>"""
-
-
-PAGE = """<!doctype html>
-<html lang="en">
-<head>
-<meta charset="utf-8">
-<meta name="viewport" content="width=device-width, initial-scale=1">
-<title>{code} - Molwright</title>
-<style>
-body {{ font: 1rem/1.5 system-ui, sans-serif; color: #1b1f23; background: #fff;
-  max-width: 42rem; margin: 3rem auto; padding: 0 1rem; }}
-code {{ background: #eef1f4; padding: .1em .3em; border-radius: .2em; }}
-</style>
-</head>
-<body>
-<main>
-{parts}
-</main>
-</body>
-</html>
-"""
+        parts.append((note, "a note in answers"))
+    return pages.respond(pages.render("explanation.html", code=code, parts=parts))
 
 
 @blueprint.get("/healthz", provide_automatic_options=False)

@@ -1,0 +1,80 @@
+"""What a page shows, in the words and units of the request; the service draws it.
+
+A page is the same answer as the JSON document: what it shows as a picture it
+also gives as a table, and what it leaves out stands in the JSON answer.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
+
+from schemas.answer import Table
+from schemas.edge import Json
+
+Cells = Sequence[float | None]
+
+
+@dataclass(frozen=True)
+class Curve:
+    """One curve of a plot, or a set of points; None where there is no value.
+
+    Attributes
+    ----------
+    label : str
+    x, y : sequence of float or None, of one length
+    drawn_as : "line" or "points"
+    """
+
+    label: str
+    x: Cells
+    y: Cells
+    drawn_as: Literal["line", "points"] = "line"
+
+
+@dataclass(frozen=True)
+class Plot:
+    """A picture, what it says in words, and the table behind it.
+
+    Attributes
+    ----------
+    title : str
+    x_label, y_label : str
+        With the unit.
+    curves : tuple of Curve
+    says : str
+        The same in a sentence or two, for who cannot see it.
+    table : Table
+    """
+
+    title: str
+    x_label: str
+    y_label: str
+    curves: tuple[Curve, ...]
+    says: str
+    table: Table
+
+
+@dataclass(frozen=True)
+class Page:
+    """A page of an answer.
+
+    Attributes
+    ----------
+    title : str
+    verdict : str
+        What the reader came for, in a sentence.
+    numbers : tuple of (words, number)
+        The numbers that matter most, as they stand in the answer; null where
+        a note says why.
+    plots : tuple of Plot
+    tables : tuple of (title, Table)
+        Further tables, shown in full.
+    """
+
+    title: str
+    verdict: str
+    numbers: tuple[tuple[str, Json | None], ...]
+    plots: tuple[Plot, ...] = ()
+    tables: tuple[tuple[str, Table], ...] = ()

@@ -1,0 +1,133 @@
+from __future__ import annotations
+
+import html
+import xml.etree.ElementTree as ElementTree
+from html.parser import HTMLParser
+
+import pytest
+
+from schemas.answer import Answer, Table
+from schemas.page import Curve, Page, Plot
+from service import drawing, pages
+
+SVG = "{http://www.w3.org/2000/svg}"
+
+
+def plot(**changes):
+    table = Table({"temperature": [300.0, 400.0], "conversion": [0.9, None]}, {"temperature": "K"})
+    members = {
+        "title": "Conversion against temperature",
+        "x_label": "temperature [K]",
+        "y_label": "conversion",
+        "curves": (Curve("at 1 bar", [300.0, 350.0, 400.0], [0.9, 0.7, 0.4]),),
+        "says": "The conversion falls from 0.9 to 0.4.",
+        "table": table,
+    }
+    return Plot(**{**members, **changes})
+
+
+def words(svg):
+    return [element.text for element in ElementTree.fromstring(svg).iter(f"{SVG}text")]  # noqa: S314
+
+
+def test_a_plot_tells_its_axes_in_text():
+    said = words(drawing.svg(plot()))
+    assert "temperature [K]" in said
+    assert "conversion" in said
+
+
+def test_a_plot_is_the_same_bytes_each_time():
+    assert drawing.svg(plot()) == drawing.svg(plot())
+
+
+def test_curves_are_named_and_told_apart_without_colour():
+    curves = tuple(Curve(f"curve {k}", [0.0, 1.0], [k, k + 1.0]) for k in range(5))
+    svg = drawing.svg(plot(curves=curves))
+    assert {f"curve {k}" for k in range(5)} <= set(words(svg))
+    dashes = {
+        part.split(";")[0]
+        for style in svg.split('style="')
+        for part in style.split("stroke-dasharray: ")[1:]
+    }
+    assert len(dashes) >= 4
+
+
+@pytest.mark.parametrize("name", ["_hidden", "$x^2$", "<b>&", "ökosüß 水", "a" * 200])
+def test_a_caller_s_names_stay_what_they_are(name):
+    curves = (Curve(name, [0.0, 1.0], [0.0, 1.0]), Curve("other", [0.0, 1.0], [1.0, 0.0]))
+    assert name in [(word or "").lstrip("\u200b") for word in words(drawing.svg(plot(curves=curves)))]
+
+
+def test_a_gap_is_a_gap_and_a_lone_value_is_shown():
+    whole = drawing.svg(plot(curves=(Curve("", [0.0, 1.0, 2.0], [1.0, 2.0, 3.0]),)))
+    lone = drawing.svg(plot(curves=(Curve("", [0.0, 1.0, 2.0], [1.0, None, 3.0]),)))
+    # Markers are drawn where lines cannot be.
+    assert lone.count("<use") > whole.count("<use")
+    drawing.svg(plot(curves=(Curve("", [None], [None]),)))
+
+
+class Reader(HTMLParser):
+    def __init__(self):
+        super().__init__()
+        self.images, self.text, self.tags, self.loads = [], [], [], []
+
+    def handle_starttag(self, tag, attrs):
+        attrs = dict(attrs)
+        self.tags.append(tag)
+        if tag == "img":
+            self.images.append(attrs)
+        self.loads += [attrs[name] for name in ("src", "href") if name in attrs]
+
+    def handle_data(self, data):
+        self.text.append(data)
+
+
+def rendered(page, notes=(), assumed=()):
+    answer = Answer({}, list(notes), list(assumed), "method", "data")
+    provenance = answer.document("1", "sha256:0", "body")["provenance"]
+    return pages.answer_page(answer, page, provenance)
+
+
+def test_a_page_holds_everything_itself():
+    note = {"code": "x", "detail": "hot <inside>", "severity": "caution", "pointer": "/feed"}
+    page = rendered(
+        Page("Equilibrium", "It is <fine>.", (("conversion", None),), (plot(),)), [note], [note]
+    )
+    read = Reader()
+    read.feed(page)
+    assert "script" not in read.tags
+    assert read.loads
+    assert all(load.startswith("data:image/svg+xml;base64,") for load in read.loads)
+    (image,) = read.images
+    assert image["alt"] == "The conversion falls from 0.9 to 0.4."
+    text = " ".join(read.text)
+    assert "It is <fine>." in text
+    assert "hot <inside>" in text
+    assert "Caution:" in text
+    assert "not known" in text
+    assert "Follow local codes" in text
+    assert "<fine>" not in page
+    assert html.escape("<fine>") in page
+
+
+@pytest.mark.parametrize(
+    ("number", "words"),
+    [
+        ({"value": 0.739999, "unit": "1", "u": 0.002275}, "0.7400 ± 0.0023"),
+        ({"value": 1234.5678, "unit": "kmol/h", "u": 12.4}, "1235 ± 12 kmol/h"),
+        ({"value": 1234567.0, "unit": "Pa", "u": 4321.0}, "(1.2346 ± 0.0043)e+6 Pa"),
+        ({"value": 12345.6, "unit": "mol", "u": 321.0}, "12350 ± 320 mol"),
+        ({"value": 3.2e-7, "unit": "1", "u": 4.1e-8}, "(3.20 ± 0.41)e-7"),
+        ({"value": 2.1436249, "unit": "m3"}, "2.1436 m3"),
+        ({"value": 0.0, "unit": "K", "u": 0.0}, "0 K"),
+        (None, "not known"),
+    ],
+)
+def test_numbers_are_told_to_what_is_known_of_them(number, words):
+    assert pages.told(number) == words
+
+
+def test_an_interval_is_told_with_its_coverage():
+    number = {"value": 1.0, "unit": "1", "interval": [0.9, 1.1], "coverage": 0.95}
+    assert pages.interval(number) == "0.9 to 1.1 (95 %)"
+    assert pages.interval({"value": 1.0, "unit": "1"}) == ""
