@@ -2,12 +2,13 @@
 
 The folders read as the chapters of the job:
 
-``substances``        formulas, molar masses
+``substances``        formulas, molar masses, properties of pure substances
 ``reactions``         equations, their balance, the stoichiometric matrix
 ``streams``           what flows in and out, and at what conditions
 ``mole_account``      the stoichiometric table and how far the extents can go
 ``outlet_analysis``   the account estimated from plant readings
 ``rates``             rate laws and their constants
+``thermochemistry``   heats and equilibrium constants of reactions, adiabatic temperatures
 ``reactors``          what size a conversion needs
 ``numerics``          quadrature and root bracketing used by the chapters
 """

@@ -28,5 +28,7 @@ DIMENSIONS: dict[str, Exponents] = {
     "frequency": (0, 0, -1, 0, 0),
     "reaction_rate": (0, -3, -1, 0, 1),
     "molar_energy": (1, 2, -2, 0, -1),
+    "molar_heat_capacity": (1, 2, -2, -1, -1),
 }
-"""``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity."""
+"""``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity;
+``molar_heat_capacity`` an entropy too."""

@@ -85,6 +85,26 @@ NOTES: dict[str, Entry] = {
         "Standard pressure 1 bar",
         "A thermodynamic equilibrium constant was read with a standard pressure of 1 bar.",
     ),
+    "equilibrium-constant-from-properties": Entry(
+        "Equilibrium constant from standard properties",
+        "The constant was computed from enthalpies of formation, entropies and heat capacities."
+        " 'provenance' has the source of each; state your own under 'species'.",
+    ),
+    "sources-disagree": Entry(
+        "Sources disagree",
+        "Well-known collections differ on the properties behind an equilibrium constant. State"
+        " those that you trust under 'species', or the constant.",
+    ),
+    "property-data-extrapolated": Entry(
+        "Property data extrapolated",
+        "A heat capacity was used outside the range of its correlation, up to 100 K, as it is at"
+        " the end of that range.",
+    ),
+    "correlation-extrapolated": Entry(
+        "Correlation extrapolated",
+        "An equilibrium constant was used outside the temperatures between which its correlation"
+        " is stated to hold.",
+    ),
     "affinity-exponent-one": Entry(
         "Affinity exponent 1",
         "The net rate was taken as forward (1 - Q/K) of the equation as written.",

@@ -344,7 +344,18 @@ _STREAMS: dict[str, Entry] = {
     "ambiguous-substance": Entry(
         "Several substances have this composition",
         "The composition fits several substances of the table, which are listed with their"
-        " registry numbers. Call the substance by one of these names, or state the value.",
+        " registry numbers. Declare under 'species' which is meant ('registry_number' or 'name'),"
+        " call the substance by one of these names, or state the value.",
+    ),
+    "identity-contradicts-formula": Entry(
+        "Registry number or name of another substance",
+        "A substance is declared with the registry number or name of one that has another formula."
+        " Correct one of them.",
+    ),
+    "property-data-missing": Entry(
+        "Property data missing",
+        "The packaged tables lack a property that is needed. The detail names the fields under"
+        " 'species' that would settle it.",
     ),
     "outside-correlation": Entry(
         "Outside the range of a correlation",

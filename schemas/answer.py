@@ -49,9 +49,12 @@ class Answer:
     data: str
     table: Callable[[], Table] | None = None
     page: Callable[[], Page] | None = None
+    properties: Json | None = None
+    """By substance, where its standard properties come from."""
 
     def document(self, release: str, digest: str, digest_of: str) -> Json:
         """Return the answer's document."""
+        properties = {} if self.properties is None else {"properties": self.properties}
         return {
             "result": self.result,
             "notes": self.notes,
@@ -60,6 +63,7 @@ class Answer:
                 "release": release,
                 "method": self.method,
                 "data": self.data,
+                **properties,
                 "digest": digest,
                 "digest_of": digest_of,
             },

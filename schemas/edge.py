@@ -364,6 +364,8 @@ class RequestReader:
         allowed: Mapping[str, Exponents],
         code: str,
         why: str,
+        *,
+        signed: bool = False,
     ) -> tuple[str, float] | None:
         """Return the kind and SI value of a constant whose unit says what it is.
 
@@ -376,6 +378,8 @@ class RequestReader:
             Exponents of the unit, by a unit that has them, spelt.
         code, why : str
             Of the fault that a unit is which fits none of them.
+        signed : bool
+            Whether it may be zero or below.
         """
         unit = self.unit(raw.unit, pointer)
         if unit is None:
@@ -385,9 +389,11 @@ class RequestReader:
             pairs = zip(unit.exponents, exponents, strict=True)
             if _plain(unit) and all(abs(a - b) < 1e-9 for a, b in pairs):
                 value = to_si(raw.value, unit)
-                if SMALLEST < value < BIGGEST and raw.value <= LARGEST:
+                usable = (signed and value == raw.value == 0) or SMALLEST < abs(value) < BIGGEST
+                if usable and abs(raw.value) <= LARGEST and (signed or value > 0):
                     return spelt, float(value)
-                self.fault("impossible-value", pointer, f"found {raw.text!r}; above zero is needed")
+                wanted = "a usable size" if signed else "above zero"
+                self.fault("impossible-value", pointer, f"found {raw.text!r}; {wanted} is needed")
                 return None
         expected = " or ".join(repr(spelt) for spelt in allowed)
         self.fault(code, pointer, f"found {raw.text!r}; {why} a unit such as {expected}")

@@ -1,4 +1,4 @@
-"""Rate laws and equilibrium constants on the wire."""
+"""Rate laws on the wire."""
 
 from __future__ import annotations
 
@@ -11,10 +11,6 @@ from marshmallow import fields
 from core.arrays import FloatArray
 from core.errors import Note, Subject
 from core.rates.constants import Arrhenius, Constant, ConstantAt, TemperatureDependent
-from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff, coefficient_sum
-from core.rates.equilibrium_constant import Kind as EquilibriumKind
-from core.rates.equilibrium_constant import expected_unit_exponents as equilibrium_unit_exponents
-from core.rates.equilibrium_constant import expected_unit_parts as equilibrium_unit_parts
 from core.rates.power_law import (
     ByAffinity,
     PowerLaw,
@@ -23,9 +19,9 @@ from core.rates.power_law import (
     expected_unit_parts,
 )
 from core.reactions.reaction_set import ReactionSet
-from core.streams.known import in_phase
 from core.streams.stream import StreamPhase
 from schemas.edge import Json, RequestReader
+from schemas.equilibrium_constant import read_equilibrium_constant
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Text, describe
 from schemas.quantities import RawQuantity
 from schemas.shape import ClosedSchema, child
@@ -69,26 +65,6 @@ def rate_constant(**kwargs: object) -> OneOf:
             "otherwise": Quantity(),
         },
         **kwargs,
-    )
-
-
-class EquilibriumConstantSchema(ClosedSchema):
-    """An equilibrium constant with what it needs to be used away from where it was stated."""
-
-    constant = Quantity(
-        required=True,
-        metadata=describe(
-            "Of the equation as written: a power of pressure is K_p, one of concentration K_c, a"
-            " number the thermodynamic constant.",
-            examples=["0.1 mol/l", "12 bar^-0.5", 2.0],
-        ),
-    )
-    at = Quantity(metadata=describe("The temperature at which it holds; with 'enthalpy'."))
-    enthalpy = Quantity(
-        metadata=describe("Standard enthalpy of the reaction as written, per mole of extent.")
-    )
-    standard_pressure = Quantity(
-        metadata=describe("Of a thermodynamic constant (unit 1) of a gas reaction; default 1 bar.")
     )
 
 
@@ -154,13 +130,6 @@ class RateSchema(ClosedSchema):
     )
     activity = Number(
         above=0, at_most=10, load_default=1.0, metadata=describe("A factor on the rate.")
-    )
-
-
-def equilibrium_constant(**kwargs: object) -> OneOf:
-    """Return the field of an equilibrium constant, in any of its forms."""
-    return OneOf(
-        {"constant": fields.Nested(EquilibriumConstantSchema), "otherwise": Quantity()}, **kwargs
     )
 
 
@@ -335,7 +304,17 @@ class _RateReader:
             orders = self._orders(said, place, about)
             constant = self._constant(said, place, about)
             return None if constant is None else ReverseConstant(constant, orders)
-        equilibrium = self._equilibrium_constant()
+        if "equilibrium_constant" not in self.document:
+            self.reader.fault(
+                "field-needed",
+                child(self.pointer, "equilibrium_constant"),
+                "a reversible rate by affinity needs the reaction's equilibrium constant; state it,"
+                " or give the reverse rate its own constant and orders",
+            )
+            return None
+        equilibrium = read_equilibrium_constant(
+            self.document, self.pointer, self.reader, self.reactions, 0, self.phase
+        )
         if equilibrium is None:
             return None
         exponent = said.get("affinity_exponent")
@@ -350,96 +329,6 @@ class _RateReader:
                 )
             )
         return ByAffinity(equilibrium, exponent)
-
-    def _equilibrium_constant(self) -> EquilibriumConstant | None:
-        said = self.document.get("equilibrium_constant")
-        place = child(self.pointer, "equilibrium_constant")
-        about: Subject = (*self.subject[:-1], "equilibrium_constant")
-        if said is None:
-            self.reader.fault(
-                "field-needed",
-                place,
-                "a reversible rate by affinity needs the reaction's equilibrium constant; state it,"
-                " or give the reverse rate its own constant and orders",
-            )
-            return None
-        self.reader.at(about, place)
-        if self.reaction is None:
-            return None
-        inside = in_phase(self.reactions, self.phase)
-        total = coefficient_sum(self.reactions.nu[0], inside)
-        kinds: dict[str, EquilibriumKind] = {}
-        allowed = {}
-        wanted: tuple[EquilibriumKind, ...] = ("pressure", "concentration", "thermodynamic")
-        if self.phase == "liquid":
-            # A number says nothing where the moles change: it hangs on standard states.
-            wanted = ("concentration",) if total else ("concentration", "thermodynamic")
-        for kind in wanted:
-            spelt = spell(equilibrium_unit_parts(kind, total))
-            kinds[spelt] = kind
-            allowed[spelt] = equilibrium_unit_exponents(kind, total)
-        plain = isinstance(said, RawQuantity)
-        raw = said if plain else said["constant"]
-        where = (place, about) if plain else (child(place, "constant"), (*about, "constant"))
-        found = self.reader.constant(
-            raw, *where, allowed, "equilibrium-constant-unit", "the equation as written needs"
-        )
-        if found is None:
-            return None
-        kind, value = kinds[found[0]], found[1]
-        if kind == "thermodynamic" and self.phase == "gas" and total:
-            self._standard_pressure(said, about)
-        if plain:
-            return EquilibriumConstant(kind, Constant(value))
-        return self._equilibrium_form(said, place, about, kind, value)
-
-    def _standard_pressure(self, said: Json | RawQuantity, subject: Subject) -> None:
-        if isinstance(said, RawQuantity) or "standard_pressure" not in said:
-            self.reader.assumed.append(
-                Note(
-                    "standard-pressure-one-bar",
-                    "the equilibrium constant is a number, so gases count in units of their"
-                    " standard pressure: 1 bar, unless 'standard_pressure' says otherwise",
-                    subject=subject,
-                )
-            )
-
-    def _equilibrium_form(
-        self, said: Json, pointer: str, subject: Subject, kind: EquilibriumKind, value: float
-    ) -> EquilibriumConstant | None:
-        reader = self.reader
-        form: TemperatureDependent = Constant(value)
-        if ("at" in said) != ("enthalpy" in said):
-            missing = "enthalpy" if "at" in said else "at"
-            reader.fault(
-                "field-needed",
-                child(pointer, missing),
-                "'at' and 'enthalpy' go together: the constant at one temperature, and how it"
-                " changes with it",
-            )
-            return None
-        if "at" in said:
-            at = reader.quantity(
-                said["at"], child(pointer, "at"), (*subject, "at"), "temperature", above=0
-            )
-            place = child(pointer, "enthalpy")
-            enthalpy = reader.quantity(
-                said["enthalpy"], place, (*subject, "enthalpy"), "molar_energy"
-            )
-            if at is None or enthalpy is None:
-                return None
-            form = VantHoff(at.value, value, enthalpy.value)
-        if "standard_pressure" not in said:
-            return EquilibriumConstant(kind, form)
-        standard = reader.quantity(
-            said["standard_pressure"],
-            child(pointer, "standard_pressure"),
-            (*subject, "standard_pressure"),
-            "pressure",
-            above=0,
-            gauge=False,
-        )
-        return None if standard is None else EquilibriumConstant(kind, form, standard.value)
 
     def _floors(self) -> FloatArray | None:
         if "floor" not in self.rate:

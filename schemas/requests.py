@@ -15,10 +15,12 @@ from core.reactions.reaction_set import ReactionSet
 from core.substances.formula import make_substance
 from core.substances.substance import Substance
 from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.equilibrium_constant import equilibrium_constant
 from schemas.fields import Choice, List, Map, OneOf, Quantity, Text, describe
-from schemas.rates import RateSchema, equilibrium_constant
+from schemas.rates import RateSchema
 from schemas.shape import ClosedSchema, child, load
 from schemas.streams import substances_of
+from schemas.thermochemistry import property_fields, read_stated
 from schemas.units import DEFAULT_UNITS
 
 T = TypeVar("T")
@@ -27,9 +29,7 @@ MAX_REACTIONS = 50
 EQUATION_PATTERN = r"^[^\x00-\x1f]{1,400}$"
 
 
-class SpeciesSchema(ClosedSchema):
-    """What is declared of a substance."""
-
+class _IdentitySchema(ClosedSchema):
     molar_mass = Quantity(metadata=describe("Needed where no formula can be read."))
     formula = Text(
         metadata=describe("Left out: the name is read as one, unless molar_mass is given.")
@@ -41,8 +41,21 @@ class SpeciesSchema(ClosedSchema):
         metadata=describe("Where it differs from its stream's: a condensed product in a gas."),
     )
     registry_number = Text(
-        pattern=r"^[0-9]{2,7}-[0-9]{2}-[0-9]$", wanted='such as "7732-18-5" is allowed'
+        pattern=r"^[0-9]{2,7}-[0-9]{2}-[0-9]$",
+        wanted='such as "7732-18-5" is allowed',
+        metadata=describe("Of the Chemical Abstracts Service: finds it in packaged tables."),
     )
+    name = Text(
+        metadata=describe(
+            "Finds it in packaged tables, where its key is a label and its formula that of"
+            " several substances.",
+            examples=["isobutane"],
+        )
+    )
+
+
+SpeciesSchema = _IdentitySchema.from_dict(property_fields(), name="SpeciesSchema")
+"""What is declared of a substance."""
 
 
 class ReactionSchema(ClosedSchema):
@@ -178,6 +191,10 @@ def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
         )
         if molar_mass is None:
             return None
+    kept = len(reader.faults)
+    stated = read_stated(said, pointer, ("species", name), reader)
+    if len(reader.faults) > kept:
+        return None
     try:
         return make_substance(
             name,
@@ -185,6 +202,9 @@ def _declared(name: str, said: Json, reader: RequestReader) -> Substance | None:
             formula=said.get("formula"),
             molar_mass=None if molar_mass is None else molar_mass.value,
             phase=said.get("phase"),
+            registry_number=said.get("registry_number"),
+            known_as=said.get("name"),
+            stated=stated,
         )
     except Refused as refused:
         reader.collect(refused)

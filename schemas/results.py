@@ -52,12 +52,47 @@ class TableSchema(OpenSchema):
     units = fields.Dict(required=True, keys=fields.String(), values=fields.String())
 
 
+class SourcedSchema(NumberSchema):
+    """A number and where it comes from."""
+
+    source = fields.String(required=True)
+    spread = fields.Nested(
+        NumberSchema,
+        metadata=describe("Largest difference from another well-known collection."),
+    )
+
+
+class HeatCapacitySourceSchema(OpenSchema):
+    """Where a heat capacity comes from and holds."""
+
+    source = fields.String(required=True)
+    lowest = fields.Nested(NumberSchema)
+    highest = fields.Nested(NumberSchema)
+
+
+class PropertySourcesSchema(OpenSchema):
+    """What a substance was taken for, and its standard properties with their sources."""
+
+    phase = fields.String(required=True)
+    name = fields.String(metadata=describe("In the packaged tables; absent where all is stated."))
+    registry_number = fields.String()
+    found_by = fields.String(metadata=describe("", enum=["registry number", "name", "composition"]))
+    enthalpy_of_formation = fields.Nested(SourcedSchema)
+    entropy = fields.Nested(SourcedSchema)
+    heat_capacity = fields.Nested(HeatCapacitySourceSchema)
+
+
 class ProvenanceSchema(OpenSchema):
     """What the answer was made with."""
 
     release = fields.String(required=True)
     method = fields.String(required=True)
     data = fields.String(required=True)
+    properties = Map(
+        fields.Nested(PropertySourcesSchema),
+        at_least=0,
+        metadata=describe("By substance, its standard properties and their sources, where used."),
+    )
     digest = fields.String(required=True, metadata=describe("Of the request."))
     digest_of = fields.String(
         required=True, metadata=describe("What it was taken of.", enum=["canonical-json", "body"])

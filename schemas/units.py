@@ -43,6 +43,7 @@ DEFAULT_UNITS: dict[str, str] = {
     "frequency": "1/h",
     "reaction_rate": "kmol/(m3 h)",
     "molar_energy": "kJ/mol",
+    "molar_heat_capacity": "J/(mol K)",
 }
 """The unit of each dimension where neither the request nor its fields name one."""
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -12,10 +13,13 @@ from core.errors import Note, Refused, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNKNOWN
 from core.mole_account.targets import DIMENSIONS as TARGET_DIMENSIONS
 from core.mole_account.targets import conversion_for
+from core.rates.power_law import ByAffinity
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.sizing import Sizing, SizingProblem
 from core.streams.stream import Stream
+from core.substances.property_data import PACKAGED, StandardProperties
+from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import (
@@ -30,6 +34,7 @@ from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reques
 from schemas.results import NumberSchema, OpenSchema, TableSchema, envelope, number
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
+from schemas.thermochemistry import write_sources
 
 
 class PlugFlowSchema(ClosedSchema):
@@ -352,13 +357,37 @@ def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
         ]
     if sizing.profile is not None:
         result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
+    of_k = _EquilibriumNotes.of(problem)
     return Answer(
         result=result,
-        notes=edge.notes((*edge.read_notes, *sizing.notes, *_notes(feed))),
-        assumed=edge.notes((*edge.read_assumed, *_assumed(problem))),
+        notes=edge.notes((*edge.read_notes, *sizing.notes, *of_k.notes, *_notes(feed))),
+        assumed=edge.notes((*edge.read_assumed, *of_k.assumed, *_assumed(problem))),
         method=METHOD,
-        data=ATOMIC_WEIGHTS,
+        data=f"{ATOMIC_WEIGHTS}; {PACKAGED}" if of_k.properties else ATOMIC_WEIGHTS,
+        properties=write_sources(edge, of_k.properties) if of_k.properties else None,
     )
+
+
+@dataclass(frozen=True)
+class _EquilibriumNotes:
+    """What an answer tells of the equilibrium constant it used."""
+
+    notes: tuple[Note, ...] = ()
+    assumed: tuple[Note, ...] = ()
+    properties: tuple[StandardProperties, ...] = ()
+
+    @classmethod
+    def of(cls, problem: SizingProblem) -> _EquilibriumNotes:
+        reverse, reaction = problem.rate.reverse, problem.reactions.reactions[0]
+        if not isinstance(reverse, ByAffinity):
+            return cls()
+        constant = reverse.equilibrium
+        t = problem.feed.temperature
+        at = None if t is None else float(t)
+        subject: Subject = ("reactions", reaction.id, "equilibrium_constant")
+        form = constant.constant
+        properties = form.properties if isinstance(form, ReactionProperties) else ()
+        return cls(constant.notes(at, subject), constant.assumed(at, subject), properties)
 
 
 def _space_velocities(feed: Stream, volume: float, edge: EdgeMap) -> Json:

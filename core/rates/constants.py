@@ -137,7 +137,7 @@ class Arrhenius:
 
     def ln_at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return ln k at the temperature, K, shape (...)."""
-        t = _temperature(temperature)
+        t = needed_temperature(temperature)
         a = positive(self.pre_exponential, (*subject, "pre_exponential"), "pre-exponential factor")
         e = finite(self.activation_energy, (*subject, "activation_energy"), "activation energy")
         n = finite(self.temperature_exponent, (*subject, "temperature_exponent"), "exponent")
@@ -190,7 +190,7 @@ def ln_from_reference(
     subject: Subject,
 ) -> FloatArray:
     """Return ln of a constant known at a reference temperature; energy in J/mol."""
-    t = _temperature(temperature)
+    t = needed_temperature(temperature)
     t1 = positive(reference, (*subject, "at"), "temperature")
     k1 = positive(constant, (*subject, "constant"), "constant")
     # One difference of temperatures loses nothing where the two are close.
@@ -231,7 +231,8 @@ def _out_of_range(
     )
 
 
-def _temperature(temperature: Values | None) -> FloatArray:
+def needed_temperature(temperature: Values | None) -> FloatArray:
+    """Return the temperature as an array; refuse it where there is none."""
     if temperature is None:
         raise refuse(
             "condition-missing",

@@ -8,13 +8,15 @@ from typing import ClassVar, Literal
 import numpy as np
 
 from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
 from core.dimensions import DIMENSIONS, Exponents
-from core.errors import Subject, refuse
+from core.errors import Amount, Note, Subject, refuse
 from core.rates.constants import (
     TemperatureDependent,
     Values,
     finite,
     ln_from_reference,
+    needed_temperature,
     positive,
 )
 from core.rates.power_product import PowerProduct, pressure_per_concentration, product_of
@@ -54,6 +56,123 @@ class VantHoff:
 
 
 @dataclass(frozen=True, eq=False)
+class LnCorrelation:
+    """ln K as a sum of terms in temperature, as correlations are published.
+
+    ln K = ln(scale) + sum of c_p (T/K)^p + c_ln ln(T/K).
+
+    Attributes
+    ----------
+    powers : tuple of (int, float)
+        p and c_p, T in K.
+    of_logarithm : float
+        c_ln.
+    scale : float
+        The unit of K in SI: 1e5^-0.5 of bar^-0.5.
+    lowest, highest : float or None
+        K, where it holds; None where that is not stated.
+    """
+
+    powers: tuple[tuple[int, float], ...]
+    of_logarithm: float = 0.0
+    scale: float = 1.0
+    lowest: float | None = None
+    highest: float | None = None
+    needs_temperature: ClassVar[bool] = True
+
+    def ln_at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
+        """Return ln K at the temperature, K, shape (...)."""
+        t = needed_temperature(temperature)
+        ln = np.full_like(t, np.log(positive(self.scale, subject, "unit of the constant")))
+        for power, c in self.powers:
+            ln += c * t**power
+        ln += self.of_logarithm * np.log(t)
+        return finite(ln, subject, "logarithm of the equilibrium constant")
+
+    def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
+        """Enthalpy of reaction that it implies, R T^2 d ln K/dT, J/mol (van 't Hoff, 1884).
+
+        Of a K_c it is the change of internal energy.
+        """
+        t = np.asarray(temperature, dtype=float)
+        slope = self.of_logarithm / t
+        for power, c in self.powers:
+            slope = slope + c * power * t ** (power - 1.0)
+        result: FloatArray = GAS_CONSTANT * t**2 * slope
+        return result
+
+    def notes(self, temperature: float, subject: Subject) -> tuple[Note, ...]:
+        """Return a warning where the temperature, K, lies outside the range stated."""
+        low = self.lowest is not None and temperature < self.lowest
+        high = self.highest is not None and temperature > self.highest
+        if not (low or high):
+            return ()
+        assert self.lowest is not None
+        assert self.highest is not None
+        return (
+            Note(
+                "correlation-extrapolated",
+                "the equilibrium constant is taken at {temperature}, and its correlation is stated"
+                " to hold from {lowest} to {highest}",
+                "warning",
+                subject,
+                {
+                    "temperature": Amount(temperature, "temperature"),
+                    "lowest": Amount(self.lowest, "temperature"),
+                    "highest": Amount(self.highest, "temperature"),
+                },
+            ),
+        )
+
+
+def converted(
+    ln_k: FloatArray | float,
+    kind: Kind,
+    to: Kind,
+    total: float,
+    temperature: Values | None = None,
+    *,
+    standard_pressure: float = STANDARD_PRESSURE,
+    to_standard_pressure: float = STANDARD_PRESSURE,
+) -> FloatArray:
+    """Return ln of a gas reaction's constant as another kind of it, in SI.
+
+    K_p = K p0^n and K_c = K_p (R T)^-n, with n the sum of the coefficients of
+    the gases: the gas is ideal.
+
+    Parameters
+    ----------
+    ln_k : float or ndarray, shape (...)
+        ln of Pa^n, (mol/m3)^n or a number, as ``kind`` says.
+    kind, to : Kind
+    total : float
+        n, see :func:`coefficient_sum`.
+    temperature : float or ndarray, shape (...), optional
+        K; needed from or to a K_c.
+    standard_pressure, to_standard_pressure : float
+        Pa; of thermodynamic constants.
+
+    Returns
+    -------
+    ndarray, shape (...)
+    """
+    ln = np.asarray(ln_k, dtype=float)
+    if "concentration" in (kind, to) and kind != to and total:
+        ln_rt = np.log(GAS_CONSTANT * needed_temperature(temperature))
+    else:
+        ln_rt = np.zeros(())
+    if kind == "thermodynamic":
+        ln = ln + total * np.log(standard_pressure)
+    elif kind == "concentration":
+        ln = ln + total * ln_rt
+    if to == "thermodynamic":
+        ln = ln - total * np.log(to_standard_pressure)
+    elif to == "concentration":
+        ln = ln - total * ln_rt
+    return ln
+
+
+@dataclass(frozen=True, eq=False)
 class EquilibriumConstant:
     """K of the reaction as written, with respect to the substances of its own phase.
 
@@ -61,7 +180,9 @@ class EquilibriumConstant:
     ----------
     kind : Kind
     constant : TemperatureDependent
-        A :class:`~core.rates.constants.Constant` or a :class:`VantHoff`, in
+        A :class:`~core.rates.constants.Constant`, a :class:`VantHoff`, a
+        :class:`LnCorrelation` or, thermodynamic at 1 bar, a
+        :class:`~core.thermochemistry.reaction_properties.ReactionProperties`; in
         Pa^n, (mol/m3)^n or 1, n the sum of the coefficients in the phase.
     standard_pressure : float
         Pa, of the thermodynamic K of a gas reaction.
@@ -70,6 +191,18 @@ class EquilibriumConstant:
     kind: Kind
     constant: TemperatureDependent
     standard_pressure: float = STANDARD_PRESSURE
+
+    def notes(self, temperature: float | None, subject: Subject) -> tuple[Note, ...]:
+        """Return what the reader of an answer must know of a constant at a temperature, K."""
+        tell = getattr(self.constant, "notes", None)
+        told: tuple[Note, ...] = tell(temperature, subject) if tell and temperature else ()
+        return told
+
+    def assumed(self, temperature: float | None, subject: Subject) -> tuple[Note, ...]:
+        """Return how a constant was found that the caller did not state, at a temperature, K."""
+        tell = getattr(self.constant, "assumed", None)
+        told: tuple[Note, ...] = tell(temperature, subject) if tell and temperature else ()
+        return told
 
     def quotient_over_constant(
         self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject

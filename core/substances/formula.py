@@ -31,7 +31,7 @@ from core.substances.atomic_weights import (
     SYMBOLS,
     require_weight,
 )
-from core.substances.substance import Formula, Phase, Substance
+from core.substances.substance import Formula, Phase, StatedProperties, Substance
 
 MAX_LENGTH = 80
 """Characters of a formula, and of the name of a substance."""
@@ -153,6 +153,9 @@ def make_substance(
     formula: str | None = None,
     molar_mass: float | None = None,
     phase: Phase | None = None,
+    registry_number: str | None = None,
+    known_as: str | None = None,
+    stated: StatedProperties | None = None,
 ) -> Substance:
     """Make a substance from what is known of it.
 
@@ -168,6 +171,8 @@ def make_substance(
         kg/mol. Wins over that of the formula. Alone, it makes the substance
         opaque: the name is never read.
     phase : Phase, optional
+    registry_number, known_as, stated
+        See :class:`~core.substances.substance.Substance`.
 
     Raises
     ------
@@ -197,7 +202,7 @@ def make_substance(
     if formula is not None:
         reading = _read(formula, subject)
     elif molar_mass is not None:
-        return Substance(name, molar_mass, None, phase)
+        return Substance(name, molar_mass, None, phase, registry_number, known_as, stated)
     else:
         reading = _read_name(name, subject)
     if reading.phase is not None and phase is not None and reading.phase != phase:
@@ -218,7 +223,15 @@ def make_substance(
             computed=Amount(computed, "mass_per_amount"),
             allowed=Amount(CONTRADICTION),
         )
-    return Substance(name, molar_mass, reading.formula, phase or reading.phase)
+    return Substance(
+        name,
+        molar_mass,
+        reading.formula,
+        phase or reading.phase,
+        registry_number,
+        known_as,
+        stated,
+    )
 
 
 def two_phases(name: str, one: Phase, other: Phase, subject: Subject) -> Refused:

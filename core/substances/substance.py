@@ -7,6 +7,8 @@ from dataclasses import dataclass, field
 from fractions import Fraction
 from typing import Literal
 
+from core.substances.heat_capacity import HeatCapacity
+
 Phase = Literal["gas", "liquid", "solid"]
 
 
@@ -28,6 +30,27 @@ class Formula:
 
 
 @dataclass(frozen=True)
+class StatedProperties:
+    """Thermochemical properties that the caller states, in the substance's phase; they win.
+
+    Attributes
+    ----------
+    enthalpy : float or None
+        Standard enthalpy of formation at 298.15 K, J/mol.
+    gibbs : float or None
+        Standard Gibbs energy of formation at 298.15 K, J/mol.
+    entropy : float or None
+        Standard entropy at 298.15 K, J/(mol K); not beside ``gibbs``.
+    heat_capacity : HeatCapacity or None
+    """
+
+    enthalpy: float | None = None
+    gibbs: float | None = None
+    entropy: float | None = None
+    heat_capacity: HeatCapacity | None = None
+
+
+@dataclass(frozen=True)
 class Substance:
     """A substance of the account.
 
@@ -42,9 +65,17 @@ class Substance:
         None for an opaque substance: known by its molar mass alone.
     phase : Phase or None
         Where stated, the phase it is found in; else that of its stream.
+    registry_number : str or None
+        Of the Chemical Abstracts Service, where the caller states it.
+    known_as : str or None
+        Its name in tables of properties, where the caller states it.
+    stated : StatedProperties or None
     """
 
     name: str
     molar_mass: float
     formula: Formula | None = None
     phase: Phase | None = None
+    registry_number: str | None = None
+    known_as: str | None = None
+    stated: StatedProperties | None = None

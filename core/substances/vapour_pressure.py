@@ -57,7 +57,8 @@ from importlib.resources import files
 from types import MappingProxyType
 
 from core.errors import Amount, Note, Subject, refuse
-from core.substances.formula import CONTRADICTION, molar_mass_of, parse_formula, split_state
+from core.substances.directory import Directory, contradiction, listing
+from core.substances.formula import molar_mass_of, parse_formula
 from core.substances.substance import Substance
 
 STATE_IT = "state 'vapour_pressure' next to its temperature and pressure"
@@ -214,18 +215,8 @@ def _entry(row: Mapping[str, str]) -> Entry:
 
 
 @cache
-def _by_name() -> Mapping[str, Entry]:
-    return MappingProxyType(
-        {name: entry for entry in table() for name in (entry.name, *entry.other_names)}
-    )
-
-
-@cache
-def _by_composition() -> Mapping[frozenset[tuple[str, Fraction]], tuple[Entry, ...]]:
-    found: dict[frozenset[tuple[str, Fraction]], tuple[Entry, ...]] = {}
-    for entry in table():
-        found[entry.atoms] = (*found.get(entry.atoms, ()), entry)
-    return MappingProxyType(found)
+def _directory() -> Directory[Entry]:
+    return Directory(table())
 
 
 def vapour_pressure(substance: Substance, temperature: float, subject: Subject) -> Saturation:
@@ -319,37 +310,27 @@ def vapour_pressure(substance: Substance, temperature: float, subject: Subject) 
 
 def _find(substance: Substance, subject: Subject) -> tuple[Entry, str]:
     """Return the substance of the table, and by what it was found."""
-    name, _ = split_state(substance.name)
-    formula = substance.formula
-    atoms = None if formula is None else frozenset(formula.elements.items())
-    neutral = formula is None or formula.charge == 0
-    named = _by_name().get(name.strip().lower())
-    if named is not None and neutral:
-        if atoms is None:
-            agrees = math.isclose(substance.molar_mass, named.molar_mass, rel_tol=CONTRADICTION)
-        else:
-            agrees = atoms == named.atoms
-        if agrees:
-            return named, "name"
-    candidates = _by_composition().get(atoms, ()) if atoms is not None and neutral else ()
-    if len(candidates) > 1:
+    found = _directory().find(substance)
+    if found.entry is not None:
+        return found.entry, found.found_by
+    if len(found.candidates) > 1:
         raise refuse(
             "ambiguous-substance",
             subject,
             "the composition of {substance} fits {count} substances whose vapour pressures"
             " differ: {candidates}; call it by one of these names, or {mend}.",
             substance=substance.name,
-            count=len(candidates),
-            candidates=", ".join(f"{entry.name} ({entry.registry_number})" for entry in candidates),
+            count=len(found.candidates),
+            candidates=listing(found.candidates),
             mend=STATE_IT,
         )
-    if not candidates:
-        raise refuse(
-            "vapour-pressure-missing",
-            subject,
-            "the table of vapour pressures has no substance of the {what} of {substance}; {mend}.",
-            what="name and molar mass" if atoms is None else "composition",
-            substance=substance.name,
-            mend=STATE_IT,
-        )
-    return candidates[0], "composition"
+    if found.other is not None:
+        raise contradiction(substance, found, subject)
+    raise refuse(
+        "vapour-pressure-missing",
+        subject,
+        "the table of vapour pressures has no substance of the {what} of {substance}; {mend}.",
+        what="name and molar mass" if found.found_by == "name" else found.found_by,
+        substance=substance.name,
+        mend=STATE_IT,
+    )

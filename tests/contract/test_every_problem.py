@@ -253,6 +253,38 @@ case(
     saturated("H2O", temperature="500 degC"),
     "/outlet/analysis/removed/0/saturated_at",
 )
+
+
+def from_thermochemistry(equation: str, key: str, **species: Any):
+    made = copy.deepcopy(SIZE)
+    made["species"] = species
+    made["key"] = key
+    made["feed"] = {**GAS_FEED, "flows": {key: "1 mol/s"}}
+    made["reactions"][0] |= {
+        "equation": equation,
+        "equilibrium_constant": {"from": "thermochemistry"},
+        "rate": {**made["reactions"][0]["rate"], "orders": {key: 1}, "reversible": {}},
+    }
+    return VOLUME, made
+
+
+case(
+    "identity-contradicts-formula",
+    from_thermochemistry(
+        "B4 <=> iB4",
+        "B4",
+        B4={"formula": "C4H10", "name": "butane"},
+        iB4={"formula": "C4H10", "registry_number": "67-56-1"},
+    ),
+    "/species/iB4",
+)
+case(
+    "property-data-missing",
+    from_thermochemistry(
+        "A <=> R", "A", A={"molar_mass": "60 g/mol"}, R={"formula": "C3H8O", "name": "2-propanol"}
+    ),
+    "/species/A",
+)
 LIQUID = changed(
     READ,
     feed={"phase": "liquid", "flows": {"CO": "1 mol/s", "H2O": "3 mol/s", "N2": "1 mol/s"}},

@@ -1,0 +1,271 @@
+"""Heat capacity over temperature, and its integrals, exact for each form of correlation.
+
+A heat capacity is made of pieces, each between two temperatures. Two forms
+are known: a polynomial whose powers of temperature follow each other, from any
+first one upward, and the equation of the TRC tables::
+
+    Cp/R = a0 + a1/T^2 exp(-a2/T) + a3 y^2 + (a4 - a5/(T - a7)^2) y^8
+    y = (T - a7)/(T + a6) above a7, else 0
+
+(G. J. Kabo, G. N. Roganov, Thermodynamics of Organic Compounds in the Gas State,
+vol. II, TRC, 1994). Enthalpy and entropy count from 298.15 K. Where one piece
+gives way to the next a heat of transition may be taken up. Beyond the pieces
+heat capacity stays as it is at their end: a polynomial runs away from its data,
+and a constant does not.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TypeAlias
+
+import numpy as np
+
+from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
+
+REFERENCE_TEMPERATURE = 298.15
+"""K; of enthalpies of formation and standard entropies."""
+
+
+_Term: TypeAlias = Callable[[float], FloatArray]
+
+
+@dataclass(frozen=True)
+class Polynomial:
+    """C_p = sum of c_k T^(first + k), J/(mol K), T in K."""
+
+    first: int
+    coefficients: tuple[float, ...]
+
+    def at(self, t: FloatArray) -> FloatArray:
+        """C_p, J/(mol K)."""
+        return self._sum(t, lambda p: t**p)
+
+    def enthalpy(self, t: FloatArray) -> FloatArray:
+        """Antiderivative of C_p, J/mol."""
+        return self._sum(t, lambda p: np.log(t) if p == -1 else t ** (p + 1) / (p + 1))
+
+    def entropy(self, t: FloatArray) -> FloatArray:
+        """Antiderivative of C_p/T, J/(mol K)."""
+        return self._sum(t, lambda p: np.log(t) if p == 0 else t**p / p)
+
+    def _sum(self, t: FloatArray, term: _Term) -> FloatArray:
+        total = np.zeros_like(t)
+        for k, c in enumerate(self.coefficients):
+            if c:
+                total += c * term(float(self.first + k))
+        return total
+
+
+@dataclass(frozen=True)
+class TrcEquation:
+    """The equation of the TRC tables; its eight coefficients, K and K^2 where they have units."""
+
+    coefficients: tuple[float, float, float, float, float, float, float, float]
+
+    def at(self, t: FloatArray) -> FloatArray:
+        """C_p, J/(mol K)."""
+        a0, a1, a2, a3, a4, a5, a6, _ = self.coefficients
+        y = self._y(t)
+        # y/(T - a7) is 1/(T + a6), which has no trouble at a7.
+        own = a3 * y**2 + a4 * y**8 - a5 * y**6 / (t + a6) ** 2
+        cp: FloatArray = GAS_CONSTANT * (a0 + a1 / t**2 * np.exp(-a2 / t) + own)
+        return cp
+
+    def enthalpy(self, t: FloatArray) -> FloatArray:
+        """Antiderivative of C_p, J/mol (Kabo and Roganov 1994)."""
+        a0, a1, a2, a3, a4, a5, a6, a7 = self.coefficients
+        y = self._y(t)
+        left, s = 1.0 - y, a6 + a7
+        logs = (2 * a3 + 8 * a4) * np.log(left)
+        sums = (a3 * (1 + 1 / left) + a4 * (7 + 1 / left)) * y
+        powers = a4 * (3 * y**2 + 5 / 3 * y**3 + y**4 + 0.6 * y**5 + y**6 / 3)
+        last = (a4 - a5 / s**2) * y**7 / 7
+        h: FloatArray = GAS_CONSTANT * (
+            a0 * t + a1 / a2 * np.exp(-a2 / t) + s * (logs + sums + powers + last)
+        )
+        return h
+
+    def entropy(self, t: FloatArray) -> FloatArray:
+        """Antiderivative of C_p/T, J/(mol K).
+
+        With dT/T = [1/(1 - y) + 1/(y + a7/a6)] dy; the closed form of the source
+        loses up to four digits where a7 is many times a6.
+        """
+        a0, a1, a2, a3, a4, a5, a6, a7 = self.coefficients
+        y, s = self._y(t), a6 + a7
+        k = _over_sum(y, a7 / a6)
+        second, eighth = _over_rest(y, 2) + k[2], _over_rest(y, 8) + k[8]
+        last = y**7 / 7 - y**8 / 8 + k[6] - 2 * k[7] + k[8]
+        x = a2 / t
+        own = a3 * second + a4 * eighth - a5 / s**2 * last
+        result: FloatArray = GAS_CONSTANT * (
+            a0 * np.log(t) + a1 / a2**2 * (1 + x) * np.exp(-x) + own
+        )
+        return result
+
+    def _y(self, t: FloatArray) -> FloatArray:
+        a6, a7 = self.coefficients[6:]
+        return np.maximum(t - a7, 0.0) / (t + a6)
+
+
+def _over_rest(y: FloatArray, n: int) -> FloatArray:
+    """Integral of y^n/(1 - y) from 0."""
+    total: FloatArray = -np.log1p(-y)
+    for k in range(1, n + 1):
+        total = total - y**k / k
+    return total
+
+
+_SERIES_FROM = 1.5
+"""Ratio above which the recurrence would lose digits, and the series needs few terms."""
+
+
+def _over_sum(y: FloatArray, r: float) -> list[FloatArray]:
+    """Integrals of y^n/(y + r) from 0, for n up to 8."""
+    if r < _SERIES_FROM:
+        found: list[FloatArray] = [np.log1p(y / r)]
+        for n in range(1, 9):
+            found.append(y**n / n - r * found[-1])
+        return found
+    terms = [(-y / r) ** j for j in range(100)]
+    found = []
+    for n in range(9):
+        series = sum((term / (n + 1 + j) for j, term in enumerate(terms)), np.zeros_like(y))
+        found.append(y ** (n + 1) / r * series)
+    return found
+
+
+Form = Polynomial | TrcEquation
+
+
+@dataclass(frozen=True)
+class Piece:
+    """One correlation and where it holds.
+
+    Attributes
+    ----------
+    lowest, highest : float
+        K.
+    form : Polynomial or TrcEquation
+    latent : float
+        Heat of the transition at ``lowest``, J/mol.
+    """
+
+    lowest: float
+    highest: float
+    form: Form
+    latent: float = 0.0
+
+
+_OfPiece: TypeAlias = Callable[[int, FloatArray], FloatArray]
+"""Takes the index of a piece, and temperatures in it."""
+
+
+@dataclass(frozen=True)
+class HeatCapacity:
+    """Heat capacity at constant pressure of a substance in one phase.
+
+    Attributes
+    ----------
+    pieces : tuple of Piece
+        In the order of their temperatures, each from where the one before ends.
+    bounded : bool
+        Whether the range of the pieces is that of data; a constant that the
+        caller states is not bounded.
+    """
+
+    pieces: tuple[Piece, ...]
+    bounded: bool = True
+
+    @classmethod
+    def constant(cls, value: float) -> HeatCapacity:
+        """Return one that is the same, J/(mol K), at every temperature."""
+        at = REFERENCE_TEMPERATURE
+        return cls((Piece(at, at, Polynomial(0, (value,))),), bounded=False)
+
+    @property
+    def lowest(self) -> float:
+        """Lower end of the range, K."""
+        return self.pieces[0].lowest
+
+    @property
+    def highest(self) -> float:
+        """Upper end of the range, K."""
+        return self.pieces[-1].highest
+
+    def at(self, temperature: float | FloatArray) -> FloatArray:
+        """C_p, J/(mol K), shape of ``temperature`` (K, above zero)."""
+        t = np.asarray(temperature, dtype=float)
+        inside = np.clip(t, self.lowest, self.highest)
+        return self._by_piece(inside, lambda k, x: self.pieces[k].form.at(x))
+
+    def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
+        """H(T) - H(298.15 K), J/mol, shape of ``temperature`` (K)."""
+        t = np.asarray(temperature, dtype=float)
+        return self._from_lowest(t)[0] - self._at_reference[0]
+
+    def entropy(self, temperature: float | FloatArray) -> FloatArray:
+        """S(T) - S(298.15 K), J/(mol K), shape of ``temperature`` (K)."""
+        t = np.asarray(temperature, dtype=float)
+        return self._from_lowest(t)[1] - self._at_reference[1]
+
+    def beyond(self, temperature: float | FloatArray) -> float:
+        """How far the farthest temperature lies outside the range, K; 0 inside."""
+        if not self.bounded:
+            return 0.0
+        t = np.asarray(temperature, dtype=float)
+        return max(self.lowest - float(t.min()), float(t.max()) - self.highest, 0.0)
+
+    @cached_property
+    def _at_reference(self) -> tuple[float, float]:
+        h, s = self._from_lowest(np.array(REFERENCE_TEMPERATURE))
+        return float(h), float(s)
+
+    @cached_property
+    def _starts(self) -> list[tuple[float, float]]:
+        """Enthalpy and entropy at the lower end of each piece, counted from the first."""
+        found = [(0.0, 0.0)]
+        for piece, following in zip(self.pieces, self.pieces[1:], strict=False):
+            ends = np.array([piece.lowest, following.lowest])
+            h, s = (np.diff(f(ends))[0] for f in (piece.form.enthalpy, piece.form.entropy))
+            latent = following.latent
+            found.append(
+                (
+                    found[-1][0] + float(h) + latent,
+                    found[-1][1] + float(s) + latent / following.lowest,
+                )
+            )
+        return found
+
+    def _from_lowest(self, t: FloatArray) -> tuple[FloatArray, FloatArray]:
+        inside = np.clip(t, self.lowest, self.highest)
+
+        def integral(k: int, x: FloatArray, which: int) -> FloatArray:
+            piece, start = self.pieces[k], self._starts[k][which]
+            f = piece.form.entropy if which else piece.form.enthalpy
+            return f(x) - f(np.array(piece.lowest)) + start
+
+        h = self._by_piece(inside, lambda k, x: integral(k, x, 0))
+        s = self._by_piece(inside, lambda k, x: integral(k, x, 1))
+        if (inside != t).any():
+            cp = self.at(t)
+            h = h + cp * (t - inside)
+            s = s + cp * np.log(t / inside)
+        return h, s
+
+    def _by_piece(self, t: FloatArray, f: _OfPiece) -> FloatArray:
+        if len(self.pieces) == 1:
+            return f(0, t)
+        inner = [piece.lowest for piece in self.pieces[1:]]
+        which = np.searchsorted(inner, t, side="right")
+        if which.size == 1:
+            return f(int(which.flat[0]), t)
+        result = np.empty_like(t)
+        for k in np.unique(which):
+            rows = which == k
+            result[rows] = f(int(k), t[rows])
+        return result

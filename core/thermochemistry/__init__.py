@@ -1,0 +1,1 @@
+"""What substances' properties make of reactions and streams: heats, equilibrium, temperatures."""

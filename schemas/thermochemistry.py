@@ -1,0 +1,184 @@
+"""Standard properties of substances on the wire: as stated, and where they came from."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+
+from marshmallow import fields
+
+from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
+from core.substances.property_data import StandardProperties
+from core.substances.substance import StatedProperties
+from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.fields import List, Number, OneOf, Quantity, Text, describe
+from schemas.quantities import RawQuantity
+from schemas.shape import ClosedSchema, child
+
+MOST_COEFFICIENTS = 8
+
+
+class HeatCapacitySchema(ClosedSchema):
+    """A polynomial in T/K."""
+
+    coefficients = List(
+        Number(),
+        at_most=MOST_COEFFICIENTS,
+        required=True,
+        metadata=describe(
+            "Of rising powers of T/K, from T^0, unless 'powers' says otherwise.",
+            examples=[[22.24, 0.0594, -3.52e-5, 7.4e-9]],
+        ),
+    )
+    powers = List(
+        Number(at_least=-4, at_most=8, integer=True),
+        at_most=MOST_COEFFICIENTS,
+        metadata=describe("Of T/K, one for each coefficient.", examples=[[0, 1, -2]]),
+    )
+    unit = Text(
+        pattern=r"^[^\x00-\x1f]{1,40}$",
+        wanted="a unit is 1 to 40 characters long",
+        required=True,
+        metadata=describe("Of the heat capacity; T is in kelvins.", examples=["J/(mol K)"]),
+    )
+    between = List(
+        Quantity(),
+        at_least=2,
+        at_most=2,
+        metadata=describe(
+            "Temperatures between which it holds; use outside them brings a note, far outside a"
+            " refusal.",
+            examples=[["298 K", "1500 K"]],
+        ),
+    )
+
+
+def property_fields() -> dict[str, fields.Field[object]]:
+    """Return the fields by which a declared substance states its standard properties."""
+    return {
+        "enthalpy_of_formation": Quantity(
+            metadata=describe(
+                "Standard, at 298.15 K, of the substance in its phase; wins over packaged data.",
+                examples=["-110.53 kJ/mol"],
+            )
+        ),
+        "gibbs_of_formation": Quantity(
+            metadata=describe("Standard, at 298.15 K; in place of 'entropy'.")
+        ),
+        "entropy": Quantity(
+            metadata=describe("Standard, at 298.15 K and 1 bar.", examples=["197.65 J/(mol K)"])
+        ),
+        "heat_capacity": OneOf(
+            {"coefficients": fields.Nested(HeatCapacitySchema), "otherwise": Quantity()},
+            metadata=describe(
+                "At constant pressure, of the substance in its phase: one value, or a polynomial.",
+                examples=["29.1 J/(mol K)"],
+            ),
+        ),
+    }
+
+
+def read_stated(
+    said: Json, pointer: str, subject: tuple[str, ...], reader: RequestReader
+) -> StatedProperties | None:
+    """Return what a substance's declaration states of its properties; None where nothing is."""
+
+    def number(name: str, dimension: str, above: float | None = None) -> float | None:
+        if name not in said:
+            return None
+        place, about = child(pointer, name), (*subject, name)
+        found = reader.quantity(said[name], place, about, dimension, above=above)
+        return None if found is None else found.value
+
+    if "gibbs_of_formation" in said and "entropy" in said:
+        reader.fault(
+            "conflicting-fields",
+            child(pointer, "gibbs_of_formation"),
+            "found 'gibbs_of_formation' and 'entropy', each of which follows from the other; state"
+            " one of them",
+        )
+    enthalpy = number("enthalpy_of_formation", "molar_energy")
+    gibbs = number("gibbs_of_formation", "molar_energy")
+    entropy = number("entropy", "molar_heat_capacity", above=0)
+    heat_capacity = None
+    if isinstance(said.get("heat_capacity"), RawQuantity):
+        constant = number("heat_capacity", "molar_heat_capacity", above=0)
+        heat_capacity = None if constant is None else HeatCapacity.constant(constant)
+    elif "heat_capacity" in said:
+        place, about = child(pointer, "heat_capacity"), (*subject, "heat_capacity")
+        heat_capacity = _read_polynomial(said["heat_capacity"], place, about, reader)
+    stated = StatedProperties(enthalpy, gibbs, entropy, heat_capacity)
+    return None if stated == StatedProperties() else stated
+
+
+def _read_polynomial(
+    said: Json, pointer: str, subject: tuple[str, ...], reader: RequestReader
+) -> HeatCapacity | None:
+    kept = len(reader.faults)
+    reader.at(subject, pointer)
+    # The unit is that of a heat capacity; one of it is the factor of every coefficient.
+    unit = reader.quantity(
+        RawQuantity(1.0, said["unit"]),
+        child(pointer, "unit"),
+        (*subject, "unit"),
+        "molar_heat_capacity",
+    )
+    coefficients: list[float] = said["coefficients"]
+    powers: list[int] = said.get("powers", list(range(len(coefficients))))
+    if len(powers) != len(coefficients) or len(set(powers)) != len(powers):
+        reader.fault(
+            "conflicting-fields",
+            child(pointer, "powers"),
+            f"found {len(coefficients)} coefficients and the powers {powers}; state one power for"
+            " each coefficient, and none twice",
+        )
+    ends = [
+        reader.quantity(
+            raw,
+            child(pointer, "between", k),
+            (*subject, "between", str(k)),
+            "temperature",
+            above=0,
+        )
+        for k, raw in enumerate(said.get("between", ()))
+    ]
+    if len(reader.faults) > kept or unit is None:
+        return None
+    first = min(powers)
+    row = [0.0] * (max(powers) - first + 1)
+    for power, c in zip(powers, coefficients, strict=True):
+        row[power - first] = c * unit.value
+    form = Polynomial(first, tuple(row))
+    low, high = sorted(end.value for end in ends if end is not None) if ends else WIDE
+    return HeatCapacity((Piece(low, high, form),), bounded=bool(ends))
+
+
+WIDE = (1.0, 1e4)
+"""K; a polynomial without a range is used wherever temperatures are believed."""
+
+
+def write_sources(edge: EdgeMap, properties: Iterable[StandardProperties]) -> Json:
+    """Return the sources of substances' properties, by the caller's names."""
+    return {p.substance: _sources(edge, p) for p in properties}
+
+
+def _sources(edge: EdgeMap, p: StandardProperties) -> Json:
+    told: Json = {"phase": p.phase}
+    if p.name is not None:
+        told |= {"name": p.name, "registry_number": p.registry_number, "found_by": p.found_by}
+    for name, key, value, dimension in (
+        ("enthalpy_of_formation", "enthalpy", p.enthalpy, "molar_energy"),
+        ("entropy", "entropy", p.entropy, "molar_heat_capacity"),
+    ):
+        if value is not None and key in p.sources:
+            told[name] = {**edge.number(value, dimension), "source": p.sources[key]}
+            if key in p.spreads:
+                told[name]["spread"] = edge.number(p.spreads[key], dimension)
+    cp = p.heat_capacity
+    if cp is not None:
+        told["heat_capacity"] = {"source": p.sources["heat_capacity"]}
+        if cp.bounded:
+            told["heat_capacity"] |= {
+                "lowest": edge.number(cp.lowest, "temperature"),
+                "highest": edge.number(cp.highest, "temperature"),
+            }
+    return told
