@@ -74,29 +74,7 @@ OF_ATCT, OF_CRC, OF_GAS = 2000.0, 20000.0, 3000.0
 SAME = {"gas": (100.0, 0.2), "liquid": (1000.0, 2.0), "solid": (1000.0, 2.0)}
 """J/mol and J/(mol K); within which two registry numbers are one substance."""
 
-WITHOUT_WEIGHT = set(re.findall("[A-Z][a-z]", "TcPmPoAtRnFrRaAcNpPuAmCmBkCfEsFmMdNoLr"))
-    *[
-        "Tc",
-        "Pm",
-        "Po",
-        "At",
-        "Rn",
-        "Fr",
-        "Ra",
-        "Ac",
-        "Np",
-        "Pu",
-        "Am",
-        "Cm",
-        "Bk",
-        "Cf",
-        "Es",
-        "Fm",
-        "Md",
-        "No",
-        "Lr",
-    ]
-}
+WITHOUT_WEIGHT = frozenset(re.findall("[A-Z][a-z]", "TcPmPoAtRnFrRaAcNpPuAmCmBkCfEsFmMdNoLr"))
 """Elements without a standard atomic weight, of which no account can be kept."""
 
 OF_FORMULA = 40.0
