@@ -84,9 +84,10 @@ class LnCorrelation:
         """Return ln K at the temperature, K, shape (...)."""
         t = needed_temperature(temperature)
         ln = np.full_like(t, np.log(positive(self.scale, subject, "unit of the constant")))
-        for power, c in self.powers:
-            ln += c * t**power
-        ln += self.of_logarithm * np.log(t)
+        with np.errstate(over="ignore", invalid="ignore"):
+            for power, c in self.powers:
+                ln += c * t**power
+            ln += self.of_logarithm * np.log(t)
         return finite(ln, subject, "logarithm of the equilibrium constant")
 
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
