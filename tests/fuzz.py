@@ -1276,6 +1276,59 @@ class Maker:
                     made["outlet"][name] = self.rnd.choice(values)
         return made, None
 
+    def correlation(self, unit: str) -> Json:
+        """Return an equilibrium constant by a sum of terms, of any size and sense."""
+        rnd = self.rnd
+        terms = {
+            "constant": rnd.choice([0, 1, -12.3, 700, -1e6]),
+            "log_temperature": rnd.choice([0, -1.5, 2, 1e4]),
+            "inverse_temperature": rnd.choice(["5000 K", "-2e4 K", "9e3 degR", "0 K", "1e15 K"]),
+            "inverse_temperature_squared": rnd.choice(["1e6 K2", "-3e5 K^2", "0 K2"]),
+            "temperature": rnd.choice(["1e-3 1/K", "-2e-2 1/K", "1 K"]),
+            "temperature_squared": rnd.choice(["1e-7 1/K2", "1e-60 1/K^2", "1e10 1/K2"]),
+        }
+        kept = {name: term for name, term in terms.items() if self.chance(0.35)}
+        made: dict[str, Json] = {rnd.choice(["ln", "log10"]) + "_coefficients": kept}
+        if unit or self.chance(0.3):
+            made["unit"] = unit or "1"
+        if self.chance(0.3):
+            made["between"] = rnd.sample(["300 K", "600 degC", "1e6 K", "5 bar"], 2)
+        if self.chance(0.2):
+            made["standard_pressure"] = rnd.choice(["1 atm", "1 bar", "0 Pa"])
+        return made
+
+    def state_properties(self, made: dict[str, Any], names: list[str]) -> None:
+        """State properties of some substances, in a request's own declaration of them."""
+        rnd = self.rnd
+        species = made.setdefault("species", {})
+        for name in names:
+            if self.chance(0.5):
+                continue
+            said = species.setdefault(name, {})
+            said["enthalpy_of_formation"] = rnd.choice(["-110 kJ/mol", "0 J/mol", "1e9 kJ/mol"])
+            third = rnd.choice(["entropy", "entropy", "gibbs_of_formation"])
+            said[third] = {
+                "entropy": rnd.choice(["200 J/(mol K)", "50 cal/(mol K)", "-1 J/(mol K)"]),
+                "gibbs_of_formation": rnd.choice(["-90 kJ/mol", "20 kcal/mol"]),
+            }[third]
+            said["heat_capacity"] = rnd.choice(
+                [
+                    "30 J/(mol K)",
+                    "1e-9 J/(mol K)",
+                    {"coefficients": [25, 0.01, -1e-6], "unit": "J/(mol K)"},
+                    {"coefficients": [25, 1e5], "powers": [0, -2], "unit": "cal/(mol K)"},
+                    {
+                        "coefficients": [25, -0.05],
+                        "unit": "J/(mol K)",
+                        "between": ["300 K", "700 K"],
+                    },
+                ]
+            )
+            if self.chance(0.2):
+                said["registry_number"] = rnd.choice(["630-08-0", "7732-18-5", "106-97-8"])
+            if self.chance(0.2):
+                said["name"] = rnd.choice(["water", "isobutane", "x", " butane "])
+
     def volume(self) -> tuple[Json, float | None]:
         rnd = self.rnd
         system, fed, _left, _ = self.account()
@@ -1358,6 +1411,11 @@ class Maker:
                     else ""
                 )
                 reaction["equilibrium_constant"] = f"{self.spread(1e-6, 1e6):.6g} {unit}".strip()
+                if self.chance(0.3):
+                    reaction["equilibrium_constant"] = self.correlation(unit)
+                elif self.chance(0.6):
+                    reaction["equilibrium_constant"] = {"from": "thermochemistry"}
+                    self.state_properties(made, names)
             else:
                 back = {
                     n: rnd.choice([1, 2, 0.5]) for n, c in nu.items() if c > 0 and self.chance(0.8)

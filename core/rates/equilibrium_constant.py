@@ -26,6 +26,9 @@ from core.streams.stream import Stream
 Kind = Literal["pressure", "concentration", "thermodynamic"]
 """K_p, a power of pressure; K_c, a power of concentration; the thermodynamic K, a number."""
 
+_MOST_DECADES = 1000
+"""Of an equilibrium constant; oxides of metals reach three hundred at room temperature."""
+
 STANDARD_PRESSURE = 1e5
 """Pa: 1 bar, the standard state of gases (IUPAC, 1982)."""
 
@@ -84,10 +87,22 @@ class LnCorrelation:
         """Return ln K at the temperature, K, shape (...)."""
         t = needed_temperature(temperature)
         ln = np.full_like(t, np.log(positive(self.scale, subject, "unit of the constant")))
-        for power, c in self.powers:
-            ln += c * t**power
-        ln += self.of_logarithm * np.log(t)
-        return finite(ln, subject, "logarithm of the equilibrium constant")
+        with np.errstate(over="ignore", invalid="ignore"):
+            for power, c in self.powers:
+                ln += c * t**power
+            ln += self.of_logarithm * np.log(t)
+        if not (np.abs(ln) <= _MOST_DECADES * np.log(10.0)).all():
+            bad = int(np.flatnonzero(~(np.abs(ln) <= _MOST_DECADES * np.log(10.0)))[0])
+            raise refuse(
+                "impossible-value",
+                subject,
+                "at {temperature} the correlation gives ln K = {ln_k} in SI units; up to {most}"
+                " decades are believed: check the coefficients, their signs and units",
+                temperature=Amount(float(t.flat[bad]), "temperature"),
+                ln_k=f"{float(ln.flat[bad]):.6g}",
+                most=_MOST_DECADES,
+            )
+        return ln
 
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
         """Enthalpy of reaction that it implies, R T^2 d ln K/dT, J/mol (van 't Hoff, 1884).

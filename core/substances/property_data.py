@@ -48,7 +48,6 @@ SOURCES: Mapping[str, str] = MappingProxyType(
         "crc-handbook-2014": "CRC Handbook of Chemistry and Physics, 95th ed. (2014)",
         "trc-1994": "Kabo and Roganov, Thermodynamics of Organic Compounds in the Gas State,"
         " TRC (1994)",
-        "nist-webbook": "NIST Chemistry WebBook",
         "nist-webbook-shomate": "Shomate equation of the NIST Chemistry WebBook",
         "poling-2001": "Poling, Prausnitz and O'Connell, The Properties of Gases and Liquids,"
         " 5th ed. (2001)",
@@ -60,7 +59,6 @@ SOURCES: Mapping[str, str] = MappingProxyType(
         "mathews-1972": "Mathews, Chem. Rev. 72 (1972) 71",
         "passut-danner-1973": "Passut and Danner, Ind. Eng. Chem. Process Des. Dev. 12 (1973) 365",
         "psrk-2005": "Horstmann et al., Fluid Phase Equilib. 227 (2005) 157",
-        "pina-martinez-2019": "Pina-Martinez et al., J. Chem. Eng. Data 64 (2019) 5126",
     }
 )
 """What the keys in the tables stand for."""
