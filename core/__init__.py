@@ -8,6 +8,8 @@ The folders read as the chapters of the job:
 ``mole_account``      the stoichiometric table and how far the extents can go
 ``outlet_analysis``   the account estimated from plant readings
 ``rates``             rate laws and their constants
+``real_gas``          cubic equations of state, and whether a gas condenses
+``equilibrium``       the composition at which reactions come to rest
 ``reactors``          what size a conversion needs
 ``numerics``          quadrature and root bracketing used by the chapters
 """

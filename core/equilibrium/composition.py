@@ -9,7 +9,7 @@ back where its formation would have Q below K.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from enum import IntEnum
 
 import numpy as np
@@ -124,6 +124,11 @@ def find(task: Task, start: Composition | None = None) -> Composition:
     count, width = task.feed.shape
     scale = task.feed.sum(axis=1, keepdims=True)
     fed = task.feed / scale
+    if not task.per_total:
+        inside = task.space.reactions.nu[:, task.in_mixture]
+        orders = inside.sum(axis=1)
+        orders[np.abs(orders) <= 1e-12 * np.abs(inside).sum(axis=1)] = 0.0
+        task = replace(task, ln_k=task.ln_k - np.log(scale) * orders)
     search = _Search(
         task,
         fed.copy(),

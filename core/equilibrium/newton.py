@@ -287,9 +287,7 @@ def _newton_step(
     """Return the change of the logarithms of the minor amounts, (N, r)."""
     ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
     mixture = np.where(system.in_mixture, basis.of_major, 0.0)
-    shares = np.where(
-        mixture != 0, mixture * np.exp(ln_minor[:, :, None] - ln_n[:, None, :]), 0.0
-    )
+    shares = np.where(mixture != 0, mixture * np.exp(ln_minor[:, :, None] - ln_n[:, None, :]), 0.0)
     matrix = mixture @ shares.transpose(0, 2, 1)
     if system.per_total:
         rise = (basis.nu * system.in_mixture).sum(axis=2)

@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.numerics.roots import find_root
+from core.numerics.roots import Function, find_root
 
 _EPS = float(np.finfo(float).eps)
 _REACHES = (8.0, 64.0, 512.0, 1e4, 1e6)
@@ -88,7 +88,8 @@ def find_extent(case: OneReaction) -> OneOutcome:
         # The share may be too small for a number of its own; its logarithm is not.
         far = np.where(used, -s[:, None], s[:, None])
         on_way = np.where(moving & (far < -700), ln_way[rows] + far, on_way)
-        return np.logaddexp(ln_least[rows], on_way)
+        found: FloatArray = np.logaddexp(ln_least[rows], on_way)
+        return found
 
     def excess(s: FloatArray, rows: np.ndarray) -> FloatArray:
         ln_n = ln_amounts(s, rows)
@@ -113,7 +114,7 @@ def find_extent(case: OneReaction) -> OneOutcome:
         if good.any():
             rows = todo[good]
             bound = np.full(len(rows), reach)
-            s[rows] = find_root(lambda x, i, rows=rows: excess(x, rows[i]), -bound, bound)
+            s[rows] = find_root(_of(excess, rows), -bound, bound)
             todo, low, high = todo[~good], low[~good], high[~good]
         if not len(todo):
             break
@@ -129,3 +130,8 @@ def find_extent(case: OneReaction) -> OneOutcome:
     extent = np.where(share <= left, lower + width * share, upper - width * left)
     found[still], extent[still] = np.log(held[still]), 0.0
     return OneOutcome(found, extent, at_end, converged)
+
+
+def _of(excess: Function, rows: np.ndarray) -> Function:
+    """Return the same function of some of the samples."""
+    return lambda x, case: excess(x, rows[case])

@@ -188,4 +188,3 @@ def reaction_space(reactions: ReactionSet) -> ReactionSpace:
         dependences,
         conserved.reshape(len(kept), len(reactions.names)),
     )
-
