@@ -9,6 +9,8 @@ The folders read as the chapters of the job:
 ``outlet_analysis``   the account estimated from plant readings
 ``rates``             rate laws and their constants
 ``thermochemistry``   heats and equilibrium constants of reactions, adiabatic temperatures
+``real_gas``          cubic equations of state, and whether a gas condenses
+``equilibrium``       the composition at which reactions come to rest
 ``reactors``          what size a conversion needs
 ``numerics``          quadrature and root bracketing used by the chapters
 """

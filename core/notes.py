@@ -176,6 +176,16 @@ NOTES: dict[str, Entry] = {
         "Idle tanks",
         "The first tanks of the series stand unreacted.",
     ),
+    "gas-not-ideal": Entry(
+        "The gas is not ideal",
+        "The gas was taken as ideal, and an equation of state puts its Z outside 0.95 to 1.05. Ask"
+        " for one of the other gas models.",
+    ),
+    "gas-may-condense": Entry(
+        "The gas may condense",
+        "An equation of state has a liquid form out of the gas, which the answer takes as one"
+        " phase. Check temperature and pressure.",
+    ),
     "no-redundancy": Entry(
         "No redundancy",
         "The readings just suffice: none of them is checked by the others.",

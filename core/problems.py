@@ -580,6 +580,29 @@ _REACTORS: dict[str, Entry] = {
     ),
 }
 
+_EQUILIBRIUM: dict[str, Entry] = {
+    "inconsistent-constants": Entry(
+        "Equilibrium constants contradict each other",
+        "Reactions that can be made of each other have constants that cannot all be true. Leave"
+        " one of the reactions out, or correct a constant.",
+    ),
+    "mixture-vanishes": Entry(
+        "Nothing is left in the gas",
+        "At this pressure the pure solids and liquids hold everything at equilibrium. Hold the"
+        " volume, lower the pressure, or add an inert gas.",
+    ),
+    "equilibrium-not-found": Entry(
+        "Equilibrium not found",
+        "The search for the composition at equilibrium did not settle. Check the constants, and"
+        " pressure or volume, for values beyond sense.",
+    ),
+    "no-such-temperature": Entry(
+        "No such temperature",
+        "The temperature that was asked for does not exist where the data hold. The detail says"
+        " what was looked for, and where.",
+    ),
+}
+
 CATALOGUE: dict[str, Entry] = {
     **_READING_A_REQUEST,
     **_HTTP,
@@ -589,6 +612,7 @@ CATALOGUE: dict[str, Entry] = {
     **_MOLE_ACCOUNT,
     **_OUTLET_ANALYSIS,
     **_REACTORS,
+    **_EQUILIBRIUM,
 }
 
 BREAKS_CONTRACT = frozenset(_READING_A_REQUEST)

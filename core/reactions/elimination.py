@@ -49,6 +49,28 @@ def eliminate(rows: Iterable[Mapping[Column, Fraction]]) -> Elimination:
     return Elimination(pivots, dependent)
 
 
+def null_space(
+    rows: Iterable[Mapping[Column, Fraction]], columns: Iterable[Column]
+) -> list[dict[Column, Fraction]]:
+    """Return a basis of the null space of ``rows``.
+
+    One vector for each column that is no pivot, with 1 there and 0 at the other
+    such columns; zeros are left out.
+    """
+    names = list(columns)
+    pivots = eliminate(rows).pivots
+    return [
+        {
+            name: Fraction(-pivots[name][free], pivots[name][name])
+            for name in names
+            if name in pivots and free in pivots[name]
+        }
+        | {free: Fraction(1)}
+        for free in names
+        if free not in pivots
+    ]
+
+
 def null_vector(
     rows: Iterable[Mapping[Column, Fraction]], columns: Iterable[Column]
 ) -> tuple[int, dict[Column, Fraction]]:
@@ -59,16 +81,10 @@ def null_vector(
     dimension.
     """
     names = list(columns)
-    pivots = eliminate(rows).pivots
-    free = [name for name in names if name not in pivots]
-    if len(free) != 1:
-        return len(free), {}
-    vector = {
-        name: Fraction(-pivots[name].get(free[0], 0), pivots[name][name])
-        if name in pivots
-        else Fraction(1)
-        for name in names
-    }
+    basis = null_space(rows, names)
+    if len(basis) != 1:
+        return len(basis), {}
+    vector = {name: basis[0].get(name, Fraction(0)) for name in names}
     scale = Fraction(
         lcm(*(value.denominator for value in vector.values())),
         gcd(*(value.numerator for value in vector.values())),

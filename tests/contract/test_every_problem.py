@@ -577,6 +577,10 @@ ELSEWHERE = {
     "root-not-bracketed": "tests/core/numerics/test_roots.py",
     "root-not-converged": "tests/core/numerics/test_roots.py",
     "integral-not-converged": "tests/core/numerics/test_quadrature.py",
+    "inconsistent-constants": "tests/core/equilibrium/test_equilibrium.py",
+    "mixture-vanishes": "tests/core/equilibrium/test_pure_phases.py",
+    "equilibrium-not-found": "tests/core/equilibrium/test_equilibrium.py",
+    "no-such-temperature": "tests/core/equilibrium/test_approach.py",
 }
 """Codes that no JSON request to a calculation brings about, and the test that does."""
 

@@ -9,9 +9,10 @@ import pytest
 from numpy.testing import assert_allclose
 
 from core.errors import Refused
+from core.numerics.linear import solve_stack
 from core.outlet_analysis.account import build_account
 from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import Fit, least_squares, solve_stack
+from core.outlet_analysis.gauss_newton import Fit, least_squares
 from core.outlet_analysis.preparation import prepare
 from core.outlet_analysis.reconciliation import estimate
 from core.outlet_analysis.solving import Fitted, fit_block

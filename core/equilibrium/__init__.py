@@ -1,0 +1,1 @@
+"""The composition at which reactions come to rest."""

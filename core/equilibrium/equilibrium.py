@@ -1,0 +1,527 @@
+"""Chemical equilibrium of the reactions stated, under four kinds of hold.
+
+The equilibrium is that of the stated reactions alone: what they cannot make is
+inert, and what all of them together keep is kept, whatever else thermodynamics
+would allow.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+from typing import Literal
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
+from core.equilibrium.composition import Composition, Status, Task, find
+from core.equilibrium.constants import Constants, Enthalpies
+from core.equilibrium.newton import IntArray
+from core.equilibrium.reaction_space import ReactionSpace, reaction_space
+from core.errors import Amount, Fault, Subject, refuse
+from core.numerics.roots import find_root
+from core.reactions.reaction_set import ReactionSet
+from core.real_gas.cubic import CubicEquation, GasState
+
+Hold = Literal["temperature-pressure", "temperature-volume", "enthalpy-pressure", "energy-volume"]
+CONSISTENT = 1e-6
+"""|sum w ln K| of reactions that add up to nothing, below which their constants agree."""
+_FUGACITIES_SETTLED = 5e-12
+_MOST_ROUNDS = 80
+
+
+@dataclass(frozen=True, eq=False)
+class Mixture:
+    """The gas or the solution in which the reactions run.
+
+    Attributes
+    ----------
+    in_mixture : ndarray of bool, shape (S,)
+        Which substances are in it; each other one is a pure solid or liquid.
+    phase : str
+        ``gas`` or ``liquid``.
+    standard_pressure : float
+        Pa, of the activities of a gas.
+    equation : CubicEquation or None
+        Of the substances in the mixture, in order; None for an ideal gas.
+    """
+
+    in_mixture: BoolArray
+    phase: Literal["gas", "liquid"] = "gas"
+    standard_pressure: float = 1e5
+    equation: CubicEquation | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class EquilibriumProblem:
+    """N samples of a feed that comes to equilibrium.
+
+    Flows, mol/s, or amounts, mol; volume and energies are then of the same kind
+    (m3/s and W, or m3 and J).
+
+    Attributes
+    ----------
+    reactions : ReactionSet
+        R of them, S substances. All are taken to run both ways.
+    mixture : Mixture
+    feed : ndarray, shape (N, S)
+    constants : Constants
+    hold : Hold
+    temperature : ndarray, shape (N,), or None
+        K, with a temperature hold.
+    pressure : ndarray, shape (N,), or None
+        Pa, of a gas with a pressure hold. A liquid needs none.
+    volume : ndarray, shape (N,), or None
+        m3, with a volume hold, and of every liquid: its density is constant.
+    energy : ndarray, shape (N,), or None
+        Enthalpy or internal energy to be kept, in J, with the heat supplied in it.
+    enthalpies : Enthalpies or None
+        With an energy hold.
+    temperatures : tuple of float
+        K, between which the temperature is sought under an energy hold.
+    subject : Subject
+        Names the problem in a fault.
+    """
+
+    reactions: ReactionSet
+    mixture: Mixture
+    feed: FloatArray
+    constants: Constants
+    hold: Hold = "temperature-pressure"
+    temperature: FloatArray | None = None
+    pressure: FloatArray | None = None
+    volume: FloatArray | None = None
+    energy: FloatArray | None = None
+    enthalpies: Enthalpies | None = None
+    temperatures: tuple[float, float] = (200.0, 3000.0)
+    subject: Subject = ()
+
+
+@dataclass(frozen=True, eq=False)
+class Equilibrium:
+    """What the samples come to; NaN in a sample that has a fault.
+
+    Attributes
+    ----------
+    amounts : ndarray, shape (N, S)
+        mol or mol/s, as the feed.
+    ln_amounts : ndarray, shape (N, S)
+        -inf for what is not there; finite where the amount itself underflows.
+    extents : ndarray, shape (N, R)
+        As the feed. Of dependent reactions those with the least sum of squares: then
+        only the changes of the substances are unique.
+    ln_quotient_over_constant : ndarray, shape (N, R)
+        ln(Q/K) of each reaction as stated, zero at equilibrium; NaN where Q has no
+        value, since a substance of the reaction is not there.
+    affinity_open : ndarray of bool, shape (N, R)
+        The reaction stopped for want of a pure phase, before Q reached K.
+    temperature, pressure, volume, compressibility : ndarray, shape (N,)
+        K, Pa, m3, -; pressure is NaN for a liquid, and volume where none was stated.
+    ln_fugacity_coefficients : ndarray, shape (N, S)
+        Zero for an ideal gas and for what is no gas.
+    balance : ndarray, shape (N,)
+        The largest error of what is conserved, relative to its terms.
+    iterations : ndarray of int, shape (N,)
+    faults : dict[int, Fault]
+        By sample.
+    """
+
+    amounts: FloatArray
+    ln_amounts: FloatArray
+    extents: FloatArray
+    ln_quotient_over_constant: FloatArray
+    affinity_open: BoolArray
+    temperature: FloatArray
+    pressure: FloatArray
+    volume: FloatArray
+    compressibility: FloatArray
+    ln_fugacity_coefficients: FloatArray
+    balance: FloatArray
+    iterations: IntArray
+    faults: dict[int, Fault] = field(default_factory=dict)
+
+
+@np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore")
+def solve_equilibrium(problem: EquilibriumProblem) -> Equilibrium:
+    """Bring every sample to equilibrium.
+
+    Temperature holds are solved by :func:`core.equilibrium.composition.find`,
+    with the fugacity coefficients of a real gas by Broyden's method around it
+    (C. G. Broyden, Math. Comp. 19 (1965) 577-593). Energy holds bracket the
+    temperature: at equilibrium enthalpy and energy rise with it.
+
+    Raises
+    ------
+    Refused
+        For the problem as a whole: ``inconsistent-constants``, ``no-flow``,
+        ``flow-negative``. What concerns a sample is in ``faults``:
+        ``equilibrium-not-found``, ``mixture-vanishes``, ``no-such-temperature``,
+        ``inconsistent-constants``.
+    """
+    _check_feed(problem)
+    solver = _Solver(problem)
+    count = len(problem.feed)
+    rows = np.arange(count)
+    if problem.hold.startswith("temperature"):
+        temperature = _given(problem.temperature, count)
+    else:
+        temperature = solver.find_temperature()
+    return solver.answer(temperature, rows)
+
+
+def _given(values: FloatArray | None, count: int) -> FloatArray:
+    found = np.full(count, np.nan)
+    if values is not None:
+        found[:] = values
+    return found
+
+
+def _check_feed(problem: EquilibriumProblem) -> None:
+    feed = problem.feed
+    if not (np.isfinite(feed) & (feed >= 0)).all():
+        i, s = np.argwhere(~(np.isfinite(feed) & (feed >= 0)))[0]
+        raise refuse(
+            "flow-negative",
+            (*problem.subject, "feed", problem.reactions.names[s]),
+            "the feed of {name} is {found}; it is at least zero",
+            name=problem.reactions.names[s],
+            found=f"{feed[i, s]:.6g}",
+        )
+    if not feed.any(axis=1).all():
+        raise refuse("no-flow", (*problem.subject, "feed"), "nothing is fed; state what is")
+
+
+@dataclass(frozen=True, eq=False)
+class _Point:
+    """Samples at a temperature each."""
+
+    composition: Composition
+    ln_gamma: FloatArray  # (m, S)
+    gas: GasState | None
+    settled: BoolArray  # (m,)
+
+
+class _Solver:
+    """One problem being solved; keeps what was found last as a start."""
+
+    def __init__(self, problem: EquilibriumProblem) -> None:
+        self.problem = problem
+        self.space: ReactionSpace = reaction_space(problem.reactions)
+        self.faults: dict[int, Fault] = {}
+        count = len(problem.feed)
+        self.pressure = _given(problem.pressure, count)
+        self.volume = _given(problem.volume, count)
+        self.last = Composition(
+            np.full(problem.feed.shape, -np.inf),
+            np.full(count, Status.NOT_CONVERGED, dtype=np.intp),
+            np.zeros(count, dtype=np.intp),
+        )
+        self.ln_gamma = np.zeros(problem.feed.shape)
+
+    @cached_property
+    def per_total(self) -> bool:
+        """Whether activities go by mole fractions."""
+        gas = self.problem.mixture.phase == "gas"
+        return gas and self.problem.hold.endswith("pressure")
+
+    @cached_property
+    def in_mixture(self) -> BoolArray:
+        return self.problem.mixture.in_mixture
+
+    @cached_property
+    def orders(self) -> FloatArray:
+        """Sum of the coefficients in the mixture, (R,), free of rounding."""
+        inside = self.problem.reactions.nu[:, self.in_mixture]
+        total = inside.sum(axis=1)
+        return np.where(np.abs(total) <= 1e-12 * np.abs(inside).sum(axis=1), 0.0, total)
+
+    def ln_constants(self, temperature: FloatArray, rows: IntArray) -> FloatArray:
+        """Return ln K as stated; note samples whose constants contradict each other."""
+        ln_k = self.problem.constants.ln_k(temperature, rows)
+        for combination in self.space.dependences:
+            off = ln_k @ combination
+            for at in np.flatnonzero(~(np.abs(off) <= CONSISTENT)).tolist():
+                ids = [r.id for r in self.problem.reactions.reactions]
+                self.faults[int(rows[at])] = Fault(
+                    "inconsistent-constants",
+                    (*self.problem.subject, "reactions"),
+                    "the reactions {ids} add up to no change at all, and the logarithms of their"
+                    " constants to {off} in place of zero; leave one of them out, or correct a"
+                    " constant",
+                    {
+                        "ids": ", ".join(ids[j] for j in np.flatnonzero(combination).tolist()),
+                        "off": f"{off[at]:.3g}",
+                    },
+                )
+        return ln_k
+
+    def ln_unit(self, temperature: FloatArray, rows: IntArray) -> FloatArray:
+        """Return ln of the activity of an ideal substance over its share or its amount, (m,)."""
+        mixture = self.problem.mixture
+        if self.per_total:
+            return np.log(self.pressure[rows] / mixture.standard_pressure)
+        if mixture.phase == "liquid":
+            return -np.log(self.volume[rows])
+        per_volume = GAS_CONSTANT * temperature / self.volume[rows]
+        return np.log(per_volume / mixture.standard_pressure)
+
+    def at(self, temperature: FloatArray, rows: IntArray) -> _Point:
+        """Return the equilibrium of some samples at a temperature each."""
+        problem = self.problem
+        ln_k = self.ln_constants(temperature, rows)
+        ideal = ln_k - self.ln_unit(temperature, rows)[:, None] * self.orders
+        task = Task(self.space, self.in_mixture, self.per_total, ideal, problem.feed[rows])
+        if problem.mixture.equation is None or problem.mixture.phase == "liquid":
+            found = find(task, self.last.samples(rows))
+            self.keep(rows, found)
+            return _Point(
+                found, np.zeros(problem.feed[rows].shape), None, found.status == Status.FOUND
+            )
+        return self.with_fugacities(task, temperature, rows)
+
+    def keep(self, rows: IntArray, found: Composition) -> None:
+        """Remember where samples stood."""
+        self.last.ln_amounts[rows] = found.ln_amounts
+        self.last.status[rows] = found.status
+
+    def with_fugacities(self, task: Task, temperature: FloatArray, rows: IntArray) -> _Point:
+        """Solve for ln K as the fugacity coefficients at their own answer shift it."""
+        nu = self.problem.reactions.nu
+        shift = self.ln_gamma[rows] @ nu.T
+        inverse = np.broadcast_to(-np.eye(nu.shape[0]), (len(rows), *(nu.shape[0],) * 2)).copy()
+        on = np.arange(len(rows))
+        found = self.last.samples(rows)
+        settled = np.zeros(len(rows), dtype=bool)
+        ln_gamma = np.zeros(task.feed.shape)
+        iterations = np.zeros(len(rows), dtype=np.intp)
+        previous: tuple[FloatArray, FloatArray] | None = None
+        for _ in range(_MOST_ROUNDS):
+            part = replace(task, ln_k=task.ln_k[on] - shift[on], feed=task.feed[on])
+            now = find(part, found.samples(on))
+            found.ln_amounts[on], found.status[on] = now.ln_amounts, now.status
+            iterations[on] += now.iterations
+            gamma = self.ln_corrections(temperature[on], rows[on], now.ln_amounts)
+            ln_gamma[on] = gamma
+            gap = gamma @ nu.T - shift[on]
+            good = np.isfinite(gap).all(axis=1) & (now.status == Status.FOUND)
+            done = good & (np.abs(gap) <= _FUGACITIES_SETTLED).all(axis=1)
+            settled[on[done]] = True
+            live = good & ~done
+            if previous is not None:
+                step, before = previous
+                change = gap - before
+                h = inverse[on]
+                toward = (h @ change[:, :, None])[:, :, 0]
+                left = (step[:, None, :] @ h)[:, 0]
+                size = (step * toward).sum(axis=1)
+                safe = np.abs(size) > 1e-12 * (step * step).sum(axis=1)
+                update = ((step - toward) / np.where(safe, size, 1.0)[:, None])[:, :, None]
+                h = h + np.where(safe[:, None, None], update * left[:, None, :], 0.0)
+                inverse[on] = h
+            step = -(inverse[on] @ gap[:, :, None])[:, :, 0]
+            length = np.abs(step).max(axis=1)
+            step *= np.minimum(1.0, 1.5 / np.maximum(length, 1e-300))[:, None]
+            if not live.any():
+                break
+            on, step, gap = on[live], step[live], gap[live]
+            shift[on] += step
+            previous = step, gap
+        found = Composition(found.ln_amounts, found.status, iterations)
+        self.keep(rows, found)
+        self.ln_gamma[rows] = np.where(settled[:, None], ln_gamma, 0.0)
+        pressure = self.pressure_at(temperature, rows, found.ln_amounts)
+        equation = self.problem.mixture.equation
+        assert equation is not None
+        gas = equation.state(temperature, pressure, self.in_gas(found.ln_amounts))
+        return _Point(found, ln_gamma, gas, settled)
+
+    def in_gas(self, ln_amounts: FloatArray) -> FloatArray:
+        """Return the amounts in the mixture, (m, S of it)."""
+        return np.exp(ln_amounts[:, self.in_mixture])
+
+    def pressure_at(
+        self, temperature: FloatArray, rows: IntArray, ln_amounts: FloatArray
+    ) -> FloatArray:
+        """Return the pressure, Pa, (m,)."""
+        if self.per_total or self.problem.mixture.phase == "liquid":
+            return self.pressure[rows]
+        amounts, volume = self.in_gas(ln_amounts), self.volume[rows]
+        if self.problem.mixture.equation is None:
+            ideal: FloatArray = GAS_CONSTANT * temperature * amounts.sum(axis=1) / volume
+            return ideal
+        return self.problem.mixture.equation.pressure(temperature, volume, amounts)
+
+    def ln_corrections(
+        self, temperature: FloatArray, rows: IntArray, ln_amounts: FloatArray
+    ) -> FloatArray:
+        """Return what ln of an activity gains over that of an ideal gas, (m, S)."""
+        equation = self.problem.mixture.equation
+        assert equation is not None
+        pressure = self.pressure_at(temperature, rows, ln_amounts)
+        pressure = np.where(pressure > 0, pressure, np.nan)
+        gas = equation.state(temperature, pressure, self.in_gas(ln_amounts))
+        found = np.zeros(ln_amounts.shape)
+        found[:, self.in_mixture] = gas.ln_fugacity_coefficients
+        if not self.per_total:
+            found[:, self.in_mixture] += np.log(gas.compressibility)[:, None]
+        return found
+
+    def energy_at(self, temperature: FloatArray, rows: IntArray) -> tuple[FloatArray, BoolArray]:
+        """Return enthalpy or internal energy at equilibrium, J, and where there is one."""
+        point = self.at(temperature, rows)
+        enthalpies = self.problem.enthalpies
+        assert enthalpies is not None
+        amounts = np.exp(point.composition.ln_amounts)
+        h = enthalpies.enthalpies(temperature, rows)
+        total: FloatArray = np.where(amounts > 0, amounts * h, 0.0).sum(axis=1)
+        gas = self.in_gas(point.composition.ln_amounts).sum(axis=1)
+        if point.gas is not None:
+            total = total + gas * point.gas.residual_enthalpy
+        if self.problem.hold == "energy-volume" and self.problem.mixture.phase == "gas":
+            z = 1.0 if point.gas is None else point.gas.compressibility
+            total = total - z * gas * GAS_CONSTANT * temperature
+        return total, point.settled & np.isfinite(total)
+
+    def find_temperature(self) -> FloatArray:
+        """Return the temperature at which each sample has its energy, K; NaN with a fault."""
+        problem = self.problem
+        count = len(problem.feed)
+        wanted = _given(problem.energy, count)
+        every = np.arange(count)
+        ends = []
+        for end in problem.temperatures:
+            energy, sound = self.energy_at(np.full(count, end), every)
+            for at in np.flatnonzero(~sound).tolist():
+                self.faults.setdefault(at, self.not_found(at, end))
+            ends.append(energy - wanted)
+        low, high = ends
+        for at in np.flatnonzero(~((low <= 0) & (high >= 0))).tolist():
+            self.faults.setdefault(
+                at,
+                Fault(
+                    "no-such-temperature",
+                    problem.subject,
+                    "between {lower} and {upper} no equilibrium has the energy of the feed and the"
+                    " heat supplied; check the feed's temperature and the heat",
+                    {
+                        "lower": Amount(problem.temperatures[0], "temperature"),
+                        "upper": Amount(problem.temperatures[1], "temperature"),
+                    },
+                ),
+            )
+        found = np.full(count, np.nan)
+        rows = np.array([i for i in range(count) if i not in self.faults], dtype=np.intp)
+        if not len(rows):
+            return found
+
+        def excess(t: FloatArray, case: IntArray) -> FloatArray:
+            mine = rows[case]
+            energy, sound = self.energy_at(t, mine)
+            for at in np.flatnonzero(~sound).tolist():
+                self.faults.setdefault(int(mine[at]), self.not_found(int(mine[at]), float(t[at])))
+            return np.where(sound, energy - wanted[mine], 0.0)
+
+        lower, upper = (np.full(len(rows), end) for end in problem.temperatures)
+        found[rows] = find_root(excess, lower, upper, subject=problem.subject)
+        for at in self.faults:
+            found[at] = np.nan
+        return found
+
+    def not_found(self, row: int, temperature: float) -> Fault:
+        """Say why a sample has no answer at a temperature."""
+        facts = {"temperature": Amount(temperature, "temperature")}
+        if self.last.status[row] == Status.MIXTURE_VANISHED:
+            return Fault(
+                "mixture-vanishes",
+                self.problem.subject,
+                "at {temperature} nothing is left in the gas: the pure solids and liquids hold"
+                " everything at this pressure. Hold the volume, lower the pressure, or add an"
+                " inert gas",
+                facts,
+            )
+        return Fault(
+            "equilibrium-not-found",
+            self.problem.subject,
+            "no equilibrium was found at {temperature}; check the constants, and pressure or"
+            " volume, for values beyond sense",
+            facts,
+        )
+
+    def answer(self, temperature: FloatArray, rows: IntArray) -> Equilibrium:
+        """Return the answer at the temperatures found or held."""
+        problem = self.problem
+        nu = problem.reactions.nu
+        count, width = problem.feed.shape
+        good = np.array([i for i in rows.tolist() if i not in self.faults], dtype=np.intp)
+        blank = np.full(count, np.nan)
+        ln_amounts, ln_phi = np.full((count, width), np.nan), np.full((count, width), np.nan)
+        pressure, volume, z = blank.copy(), blank.copy(), blank.copy()
+        iterations = np.zeros(count, dtype=np.intp)
+        excess = np.full((count, len(nu)), np.nan)
+        stopped: BoolArray = np.zeros((count, len(nu)), dtype=bool)
+        if len(good):
+            point = self.at(temperature[good], good)
+            for at in np.flatnonzero(~point.settled).tolist():
+                row = int(good[at])
+                self.faults.setdefault(row, self.not_found(row, float(temperature[row])))
+            sound = np.array([int(i) not in self.faults for i in good])
+            ln_n = point.composition.ln_amounts
+            ln_amounts[good], ln_phi[good] = ln_n, 0.0
+            if point.gas is not None:
+                ln_phi[np.ix_(good, self.in_mixture)] = point.gas.ln_fugacity_coefficients
+            pressure[good] = self.pressure_at(temperature[good], good, ln_n)
+            volume[good] = self.volume[good]
+            z[good] = 1.0 if point.gas is None else point.gas.compressibility
+            iterations[good] = point.composition.iterations
+            if problem.mixture.phase == "gas" and self.per_total:
+                amount = self.in_gas(ln_n).sum(axis=1)
+                volume[good] = z[good] * amount * GAS_CONSTANT * temperature[good] / pressure[good]
+            excess[good], stopped[good] = self.affinities(temperature[good], good, point)
+            bad = good[~sound]
+            for values in (ln_amounts, ln_phi, pressure, volume, z, excess):
+                values[bad] = np.nan
+            stopped[bad] = False
+        amounts = np.exp(ln_amounts)
+        change = amounts - problem.feed
+        extents = change @ np.linalg.pinv(nu) if len(nu) else np.zeros((count, 0))
+        conserved = self.space.conserved
+        off = np.abs(change @ conserved.T)
+        size = (amounts + problem.feed) @ np.abs(conserved.T)
+        share = np.where(size > 0, off / np.where(size > 0, size, 1.0), off)
+        return Equilibrium(
+            amounts,
+            ln_amounts,
+            extents,
+            excess,
+            stopped,
+            np.where(np.isnan(ln_amounts).any(axis=1), np.nan, temperature),
+            pressure,
+            volume,
+            z,
+            ln_phi,
+            share.max(axis=1, initial=0.0),
+            iterations,
+            self.faults,
+        )
+
+    def affinities(
+        self, temperature: FloatArray, rows: IntArray, point: _Point
+    ) -> tuple[FloatArray, BoolArray]:
+        """Return ln(Q/K) of the reactions as stated, and which of them stopped short."""
+        nu = self.problem.reactions.nu
+        ln_n = point.composition.ln_amounts
+        ln_activity = np.where(self.in_mixture, ln_n, 0.0)
+        if self.per_total:
+            inside = ln_n[:, self.in_mixture]
+            most = inside.max(axis=1, keepdims=True)
+            total = most + np.log(np.exp(inside - most).sum(axis=1, keepdims=True))
+            ln_activity = np.where(self.in_mixture, ln_n - total, 0.0)
+        unit = np.where(self.in_mixture, self.ln_unit(temperature, rows)[:, None], 0.0)
+        ln_activity = ln_activity + unit + point.ln_gamma
+        ln_k = self.problem.constants.ln_k(temperature, rows)
+        terms = np.where(nu != 0, nu * ln_activity[:, None, :], 0.0)
+        there = np.where(nu != 0, np.isfinite(ln_n)[:, None, :] | ~self.in_mixture, True)
+        excess = np.where(there.all(axis=2), terms.sum(axis=2) - ln_k, np.nan)
+        lacks = (np.isneginf(ln_n)[:, None, :] & (nu != 0) & ~self.in_mixture).any(axis=2)
+        return excess, np.asarray(lacks & ~(np.abs(excess) <= 1e-9))

@@ -1,0 +1,1 @@
+"""Gases that are not ideal: cubic equations of state."""
