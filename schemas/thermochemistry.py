@@ -74,6 +74,13 @@ def property_fields() -> dict[str, fields.Field[object]]:
                 examples=["29.1 J/(mol K)"],
             ),
         ),
+        "critical_temperature": Quantity(
+            metadata=describe("For a gas model; wins over packaged data.", examples=["126.2 K"])
+        ),
+        "critical_pressure": Quantity(metadata=describe("For a gas model.", examples=["34 bar"])),
+        "acentric_factor": Number(
+            at_least=-1, at_most=3, metadata=describe("For a gas model.", examples=[0.037])
+        ),
     }
 
 
@@ -106,7 +113,15 @@ def read_stated(
     elif "heat_capacity" in said:
         place, about = child(pointer, "heat_capacity"), (*subject, "heat_capacity")
         heat_capacity = _read_polynomial(said["heat_capacity"], place, about, reader)
-    stated = StatedProperties(enthalpy, gibbs, entropy, heat_capacity)
+    stated = StatedProperties(
+        enthalpy,
+        gibbs,
+        entropy,
+        heat_capacity,
+        number("critical_temperature", "temperature", above=0),
+        number("critical_pressure", "pressure", above=0),
+        said.get("acentric_factor"),
+    )
     return None if stated == StatedProperties() else stated
 
 

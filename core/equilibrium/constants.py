@@ -82,14 +82,18 @@ class StatedConstants:
         rows: IntArray,  # noqa: ARG002 - the protocol's signature
     ) -> FloatArray:
         """Return ln K, see :class:`Constants`."""
-        columns = []
-        for j, (k, subject) in enumerate(zip(self.stated, self.subjects, strict=True)):
-            ln = np.broadcast_to(k.constant.ln_at(temperature, subject), temperature.shape)
-            total = coefficient_sum(self.reactions.nu[j], self.in_mixture)
-            if self.phase == "gas" and total:
-                ln = ln + total * self._ln_per_standard(k, temperature)
-            columns.append(ln)
-        return np.stack(columns, axis=1)
+        each = [self.one_ln_k(j, temperature) for j in range(len(self.stated))]
+        return np.stack(each, axis=1)
+
+    def one_ln_k(self, reaction: int, temperature: FloatArray) -> FloatArray:
+        """Return ln K of one reaction, shape of the temperatures (K)."""
+        k = self.stated[reaction]
+        ln = k.constant.ln_at(temperature, self.subjects[reaction])
+        ln = np.broadcast_to(ln, temperature.shape)
+        total = coefficient_sum(self.reactions.nu[reaction], self.in_mixture)
+        if self.phase == "gas" and total:
+            ln = ln + total * self._ln_per_standard(k, temperature)
+        return ln
 
     def _ln_per_standard(self, k: EquilibriumConstant, temperature: FloatArray) -> FloatArray:
         """Return ln of the unit of the constant's activities over the standard pressure."""

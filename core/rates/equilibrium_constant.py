@@ -235,8 +235,7 @@ class EquilibriumConstant:
             ``impossible-value``.
         """
         nu = np.where(stream.in_phase, reactions.nu[reaction], 0.0)
-        if stream.phase == "liquid":
-            self._check_liquid(reactions, reaction, stream, subject)
+        self.check(reactions, reaction, stream, subject)
         ln_k = self.constant.ln_at(stream.temperature, subject)
         if self.kind == "pressure":
             return product_of(nu, "partial-pressure", stream, -ln_k)
@@ -249,9 +248,18 @@ class EquilibriumConstant:
         ratio = np.log(pressure_per_concentration(stream) / standard)
         return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0))
 
-    def _check_liquid(
+    def check(
         self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject
     ) -> None:
+        """Refuse a constant that says nothing of this reaction in a liquid.
+
+        Raises
+        ------
+        Refused
+            ``equilibrium-constant-does-not-fit``.
+        """
+        if stream.phase != "liquid":
+            return
         nu = reactions.nu[reaction]
         escaping = [
             substance.name

@@ -22,7 +22,7 @@ from __future__ import annotations
 import csv
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache, cached_property
 from importlib.resources import files
 from types import MappingProxyType
@@ -371,14 +371,23 @@ def _of_formation(substance: Substance, entropy: float) -> float | None:
     return entropy - float(sum(float(n) * known[e] for e, n in formula.elements.items()))
 
 
-def critical_constants(substance: Substance, subject: Subject) -> tuple[Entry, CriticalConstants]:
-    """Return the critical constants of a substance from the tables, and what it was taken for.
+def critical_constants(
+    substance: Substance, subject: Subject
+) -> tuple[Entry | None, CriticalConstants]:
+    """Return the critical constants of a substance: as stated, else from the tables.
+
+    Also what it was taken for there; None where all three are stated.
 
     Raises
     ------
     Refused
         As :func:`standard_properties`.
     """
+    stated = substance.stated or StatedProperties()
+    own = (stated.critical_temperature, stated.critical_pressure, stated.acentric_factor)
+    t, p, omega = own
+    if t is not None and p is not None and omega is not None:
+        return None, CriticalConstants(t, STATED, p, STATED, omega, STATED)
     found = directory().find(substance, lambda entry: entry.critical is not None)
     entry = found.entry
     if entry is None or entry.critical is None:
@@ -393,7 +402,14 @@ def critical_constants(substance: Substance, subject: Subject) -> tuple[Entry, C
             " 'critical_temperature', 'critical_pressure' and 'acentric_factor' of it.",
             substance=substance.name,
         )
-    return entry, entry.critical
+    told = entry.critical
+    if t is not None:
+        told = replace(told, temperature=t, temperature_source=STATED)
+    if p is not None:
+        told = replace(told, pressure=p, pressure_source=STATED)
+    if omega is not None:
+        told = replace(told, acentric_factor=omega, acentric_factor_source=STATED)
+    return entry, told
 
 
 def _find(

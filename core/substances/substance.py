@@ -42,12 +42,17 @@ class StatedProperties:
     entropy : float or None
         Standard entropy at 298.15 K, J/(mol K); not beside ``gibbs``.
     heat_capacity : HeatCapacity or None
+    critical_temperature, critical_pressure, acentric_factor : float or None
+        K, Pa and -.
     """
 
     enthalpy: float | None = None
     gibbs: float | None = None
     entropy: float | None = None
     heat_capacity: HeatCapacity | None = None
+    critical_temperature: float | None = None
+    critical_pressure: float | None = None
+    acentric_factor: float | None = None
 
 
 @dataclass(frozen=True)

@@ -207,6 +207,12 @@ def complete_extents(reactions: ReactionSet, reaction: int, flows: FloatArray) -
     return extents.reshape(*flows.shape[:-1], -1)
 
 
+def temperatures_known(properties: Sequence[StandardProperties]) -> tuple[float, float]:
+    """Return the temperatures between which every heat capacity is used, K."""
+    each = [_reach(cp) for cp in _capacities(properties)]
+    return max(low for low, _ in each), min(high for _, high in each)
+
+
 def _capacities(properties: Sequence[StandardProperties]) -> tuple[HeatCapacity, ...]:
     found = []
     for p in properties:

@@ -1,0 +1,458 @@
+"""A feed brought to equilibrium: the question of a request, its answer, and its heat."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
+from functools import cached_property
+from typing import Literal
+
+import numpy as np
+
+from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
+from core.equilibrium.constants import StatedConstants
+from core.equilibrium.equilibrium import (
+    Equilibrium,
+    EquilibriumProblem,
+    Hold,
+    Mixture,
+    solve_equilibrium,
+)
+from core.equilibrium.newton import IntArray
+from core.errors import Fault, Note, Refused, Subject, refuse
+from core.mole_account.extent_range import ConversionRange, conversion_range
+from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConstant
+from core.reactions.reaction_set import ReactionSet
+from core.real_gas.condensation import would_condense
+from core.real_gas.cubic import CubicEquation
+from core.real_gas.remarks import remark_on_gas
+from core.streams.stream import Stream
+from core.substances.property_data import StandardProperties
+from core.thermochemistry.heat_balance import temperatures_known
+from core.thermochemistry.reaction_properties import beyond_range
+
+Over = Literal["temperature", "pressure"]
+
+SWEPT: dict[Hold, tuple[Over, ...]] = {
+    "temperature-pressure": ("temperature", "pressure"),
+    "temperature-volume": ("temperature",),
+    "enthalpy-pressure": ("pressure",),
+    "energy-volume": (),
+}
+"""What may be swept under each hold: what it holds, and is no volume."""
+
+
+@dataclass(frozen=True, eq=False)
+class FeedAtEquilibrium:
+    """What is fed, what is held, and where else the same is asked.
+
+    Attributes
+    ----------
+    reactions : ReactionSet
+    key : int
+    feed : Stream
+        Flows of shape (S,), or the amounts of a batch.
+    constants : tuple of EquilibriumConstant, length R
+    hold : Hold
+    temperature, pressure, volume : float or None
+        K, Pa and m3 where they are not those of the feed.
+    equation : CubicEquation or None
+        Of the substances of the gas; None for an ideal one.
+    witness : CubicEquation or None
+        By which an ideal gas is judged, where its constants are known.
+    properties : tuple of StandardProperties, length S, or None
+        None where a substance's are not known: then no heat is told.
+    over : "temperature", "pressure" or None
+        What is swept.
+    values : ndarray, shape (p,)
+        K or Pa.
+    """
+
+    reactions: ReactionSet
+    key: int
+    feed: Stream
+    constants: tuple[EquilibriumConstant, ...]
+    hold: Hold = "temperature-pressure"
+    temperature: float | None = None
+    pressure: float | None = None
+    volume: float | None = None
+    equation: CubicEquation | None = None
+    witness: CubicEquation | None = None
+    properties: tuple[StandardProperties, ...] | None = None
+    over: Over | None = None
+    values: FloatArray | None = None
+
+    @cached_property
+    def stated_constants(self) -> StatedConstants:
+        """The constants, as ln K of activities."""
+        return StatedConstants(
+            self.reactions,
+            self.constants,
+            self.feed.in_phase,
+            self.feed.phase,
+            STANDARD_PRESSURE,
+            [constant_subject(self.reactions, j) for j in range(len(self.constants))],
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class FeedReached:
+    """Where the feed comes to; the state asked for first, then those of the sweep.
+
+    Attributes
+    ----------
+    problem : FeedAtEquilibrium
+    states : Equilibrium
+        N = 1 + p samples; those of the sweep may have faults.
+    conversion : ndarray, shape (N,)
+        Of the key, -.
+    range : ConversionRange
+        By what is fed, every reaction running both ways.
+    compressibility_of_feed : float
+    heat : ndarray, shape (N,), or None
+        To be supplied, W (batch: J): the change of enthalpy, or where volume is
+        held of internal energy. Zero where that is what is held.
+    notes : tuple of Note
+    """
+
+    problem: FeedAtEquilibrium
+    states: Equilibrium
+    conversion: FloatArray
+    range: ConversionRange
+    compressibility_of_feed: float
+    heat: FloatArray | None
+    notes: tuple[Note, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class _Enthalpies:
+    """Enthalpies of formation and sensible heats of substances."""
+
+    properties: Sequence[StandardProperties]
+
+    def enthalpies(self, temperature: FloatArray, rows: IntArray) -> FloatArray:  # noqa: ARG002
+        """Return h of each substance, J/mol, shape (m, S)."""
+        columns = []
+        for p in self.properties:
+            assert p.heat_capacity is not None
+            columns.append(p.enthalpy + p.heat_capacity.enthalpy(temperature))
+        return np.stack(columns, axis=-1)
+
+
+def constant_subject(reactions: ReactionSet, reaction: int) -> Subject:
+    """Return the name of a reaction's equilibrium constant."""
+    return ("reactions", reactions.reactions[reaction].id, "equilibrium_constant")
+
+
+def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
+    """Return where the feed comes to rest, there and over the sweep.
+
+    Raises
+    ------
+    Refused
+        ``key-absent``, ``condition-missing``, ``hold-needs-batch``,
+        ``sweep-does-not-fit``, ``constant-at-one-temperature``,
+        ``equilibrium-constant-does-not-fit``, what the constants refuse, and
+        what :func:`core.equilibrium.equilibrium.solve_equilibrium` does of the
+        state asked for.
+    """
+    reactions, feed = problem.reactions, problem.feed
+    _check(problem)
+    count = 1 if problem.values is None else 1 + len(problem.values)
+    temperature = _held(problem, "temperature", count)
+    pressure = _held(problem, "pressure", count)
+    volume = _volume(problem)
+    equation = problem.equation if feed.phase == "gas" else None
+    z = _compressibility(problem, equation)
+    asked = EquilibriumProblem(
+        reactions=reactions,
+        mixture=Mixture(feed.in_phase, feed.phase, STANDARD_PRESSURE, equation),
+        feed=np.broadcast_to(feed.flows, (count, len(feed.flows))),
+        constants=problem.stated_constants,
+        hold=problem.hold,
+        temperature=temperature,
+        pressure=pressure,
+        volume=None if volume is None else np.full(count, volume),
+        subject=("feed",),
+    )
+    start = None
+    if problem.properties is not None and feed.temperature is not None:
+        _check_range(problem, temperature)
+        start = _energy(problem, feed.flows, feed.temperature, feed.pressure, z)
+        asked = replace(
+            asked,
+            energy=None if start is None else np.full(count, start),
+            enthalpies=_Enthalpies(problem.properties),
+            temperatures=temperatures_known(problem.properties),
+        )
+    states = solve_equilibrium(asked)
+    if 0 in states.faults:
+        raise Refused(states.faults[0])
+    key_change = states.extents @ reactions.nu[:, problem.key]
+    reached = FeedReached(
+        problem=problem,
+        states=states,
+        conversion=-key_change / feed.flows[problem.key],
+        range=conversion_range(_both_ways(reactions), problem.key, feed.flows),
+        compressibility_of_feed=z,
+        heat=None if start is None else _heat(problem, states, start),
+        notes=(),
+    )
+    return replace(reached, notes=tuple(_notes(reached)))
+
+
+def _both_ways(reactions: ReactionSet) -> ReactionSet:
+    each = tuple(replace(reaction, reversible=True) for reaction in reactions.reactions)
+    return replace(reactions, reactions=each)
+
+
+def _check(problem: FeedAtEquilibrium) -> None:
+    reactions, feed = problem.reactions, problem.feed
+    if not feed.flows[problem.key] > 0:
+        raise refuse(
+            "key-absent",
+            ("key",),
+            "the feed holds no {key}, of which a conversion could be counted; name another key, or"
+            " state its flow",
+            key=reactions.names[problem.key],
+        )
+    if problem.hold.endswith("volume") and not feed.batch:
+        raise refuse(
+            "hold-needs-batch",
+            ("hold",),
+            "found {hold} and a feed that flows, which has no volume to hold; state 'amounts' of a"
+            " batch, or hold the pressure",
+            hold=problem.hold,
+        )
+    if problem.over is not None and problem.over not in SWEPT[problem.hold]:
+        allowed = " or ".join(SWEPT[problem.hold])
+        raise refuse(
+            "sweep-does-not-fit",
+            ("sweep", "over"),
+            "found a sweep over {over} with {hold} held; "
+            + (f"{allowed} can be swept then" if allowed else "nothing can be swept then"),
+            over=problem.over,
+            hold=problem.hold,
+        )
+    for name, holds in (("temperature", "temperature-"), ("pressure", "-pressure")):
+        if getattr(problem, name) is not None and holds not in problem.hold:
+            raise refuse(
+                "field-not-used",
+                ("at", name),
+                "found a {name}, and {hold} is held, from which it follows; leave it out",
+                name=name,
+                hold=problem.hold,
+            )
+    if problem.volume is not None and not problem.hold.endswith("volume"):
+        raise refuse(
+            "field-not-used",
+            ("at", "volume"),
+            "found a volume, and {hold} is held, from which it follows; leave it out",
+            hold=problem.hold,
+        )
+    stream = replace(feed, temperature=problem.temperature or feed.temperature)
+    for j, constant in enumerate(problem.constants):
+        constant.check(reactions, j, stream, constant_subject(reactions, j))
+    varies = problem.over == "temperature" or not problem.hold.startswith("temperature")
+    if varies:
+        check_temperature_dependence(problem)
+
+
+def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
+    """Refuse constants known at one temperature only, where others come into it.
+
+    Raises
+    ------
+    Refused
+        ``constant-at-one-temperature``.
+    """
+    faults = [
+        Fault(
+            "constant-at-one-temperature",
+            constant_subject(problem.reactions, j),
+            "one value is stated of the equilibrium constant, and the question needs it over"
+            " temperature: state it 'at' a temperature with the 'enthalpy' of the reaction, as a"
+            " correlation, or as {{\"from\": \"thermochemistry\"}}".replace("{{", "{").replace(
+                "}}", "}"
+            ),
+        )
+        for j, constant in enumerate(problem.constants)
+        if not constant.constant.needs_temperature
+    ]
+    if faults:
+        raise Refused(faults)
+
+
+def _held(problem: FeedAtEquilibrium, name: Over, count: int) -> FloatArray | None:
+    """Return what is held of temperature or pressure, shape (N,); None where it is not held."""
+    if name not in problem.hold:
+        return None
+    asked = getattr(problem, name)
+    value = getattr(problem.feed, name) if asked is None else asked
+    if value is None and name == "pressure" and problem.feed.phase == "liquid":
+        return None
+    if value is None:
+        raise refuse(
+            "condition-missing",
+            ("feed", name),
+            "{name} is held and not stated; state it of the feed, or under 'at'",
+            name=name,
+        )
+    held = np.full(count, float(value))
+    if problem.over == name and problem.values is not None:
+        held[1:] = problem.values
+    return held
+
+
+def _volume(problem: FeedAtEquilibrium) -> float | None:
+    """Return the volume that is held, or of a liquid, m3 or m3/s."""
+    feed = problem.feed
+    if feed.phase == "liquid":
+        own = feed.volumetric_flow
+        if problem.volume is not None:
+            return problem.volume
+        if own is None:
+            orders = problem.reactions.nu[:, feed.in_phase].sum(axis=1)
+            if not orders.any():
+                # A volume cancels: any will do.
+                return float(feed.phase_total)
+            raise refuse(
+                "condition-missing",
+                ("feed",),
+                "the equilibrium of a liquid whose moles change hangs on concentrations, and its"
+                " volume is not stated; state the volumetric flow (a batch: the volume), the"
+                " density or concentrations",
+            )
+        return float(own)
+    if not problem.hold.endswith("volume"):
+        return None
+    if problem.volume is not None:
+        return problem.volume
+    own = feed.volumetric_flow
+    if own is None:
+        raise refuse(
+            "condition-missing",
+            ("feed",),
+            "volume is held and not known; state it under 'at', or temperature and pressure of the"
+            " feed",
+        )
+    z = _compressibility(problem, problem.equation) / feed.compressibility
+    return float(own) * z
+
+
+def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None) -> float:
+    """Return Z of the feed."""
+    feed = problem.feed
+    if equation is None or feed.temperature is None or feed.pressure is None:
+        return feed.compressibility
+    state = equation.state(
+        np.array([feed.temperature]),
+        np.array([feed.pressure]),
+        feed.flows[None, feed.in_phase],
+    )
+    return float(state.compressibility[0])
+
+
+def _check_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> None:
+    assert problem.properties is not None
+    at = [problem.feed.temperature]
+    if temperature is not None:
+        at += [float(temperature.min()), float(temperature.max())]
+    faults = beyond_range(problem.properties, np.array(at, dtype=float), ("feed", "temperature"))
+    if faults:
+        raise Refused(faults)
+
+
+def _energy(
+    problem: FeedAtEquilibrium,
+    flows: FloatArray,
+    temperature: float,
+    pressure: float | None,
+    z: float,
+) -> float | None:
+    """Enthalpy of the feed, or its internal energy where volume is held, W (batch: J)."""
+    feed = problem.feed
+    assert problem.properties is not None
+    t = np.array([temperature])
+    each = _Enthalpies(problem.properties).enthalpies(t, np.zeros(1, dtype=np.intp))[0]
+    total = float(flows @ each)
+    gas = float(feed.phase_total) if feed.phase == "gas" else 0.0
+    if problem.equation is not None and feed.phase == "gas":
+        if pressure is None:
+            return None
+        state = problem.equation.state(t, np.array([pressure]), flows[None, feed.in_phase])
+        total += gas * float(state.residual_enthalpy[0])
+    if problem.hold.endswith("volume"):
+        total -= z * gas * GAS_CONSTANT * temperature
+    return total
+
+
+def _heat(problem: FeedAtEquilibrium, states: Equilibrium, start: float) -> FloatArray:
+    """Return the heat to be supplied in each state, W (batch: J)."""
+    if not problem.hold.startswith("temperature"):
+        return np.where(np.isnan(states.temperature), np.nan, 0.0)
+    heat = np.full(len(states.amounts), np.nan)
+    for k in np.flatnonzero(~np.isnan(states.temperature)).tolist():
+        pressure = float(states.pressure[k])
+        inside = replace(problem.feed, flows=states.amounts[k])
+        end = _energy(
+            replace(problem, feed=inside),
+            states.amounts[k],
+            float(states.temperature[k]),
+            pressure if np.isfinite(pressure) else None,
+            float(states.compressibility[k]),
+        )
+        heat[k] = np.nan if end is None else end - start
+    return heat
+
+
+def _notes(reached: FeedReached) -> Iterator[Note]:
+    problem, states = reached.problem, reached.states
+    reactions = problem.reactions
+    temperature = float(states.temperature[0])
+    for j, constant in enumerate(problem.constants):
+        yield from constant.notes(temperature, constant_subject(reactions, j))
+    written_one_way = [r.id for r in reactions.reactions if not r.reversible]
+    if written_one_way:
+        yield Note(
+            "taken-as-reversible",
+            "written one way and taken to run both ways, as equilibrium has it: {reactions}",
+            subject=("reactions",),
+            facts={"reactions": ", ".join(written_one_way)},
+        )
+    stopped = np.flatnonzero(states.affinity_open[0])
+    if len(stopped):
+        yield Note(
+            "stopped-short-of-equilibrium",
+            "{reactions} stopped before equilibrium, because a pure solid or liquid is used up or"
+            " does not form",
+            subject=("reactions",),
+            facts={"reactions": ", ".join(reactions.reactions[j].id for j in stopped.tolist())},
+        )
+    if states.faults:
+        row, fault = min(states.faults.items())
+        yield Note(
+            "points-without-answer",
+            "{count} of {points} points of the sweep have no answer; the first of them, point"
+            " {first}: " + str(fault.detail),
+            "warning",
+            ("sweep",),
+            {
+                **fault.facts,
+                "count": len(states.faults),
+                "points": len(states.amounts) - 1,
+                "first": row,
+            },
+        )
+    equation = problem.equation or problem.witness
+    if problem.feed.phase == "gas" and equation is not None:
+        good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))
+        inside = states.amounts[np.ix_(good, problem.feed.in_phase)]
+        at = states.temperature[good], states.pressure[good], inside
+        yield from remark_on_gas(
+            equation.state(*at).compressibility,
+            would_condense(equation, *at),
+            taken_as_ideal=problem.equation is None,
+            subject=("gas_model",),
+        )
