@@ -27,6 +27,8 @@ DIMENSIONS: dict[str, Exponents] = {
     "time": (0, 0, 1, 0, 0),
     "frequency": (0, 0, -1, 0, 0),
     "reaction_rate": (0, -3, -1, 0, 1),
+    "reaction_rate_per_mass": (-1, 0, -1, 0, 1),
     "molar_energy": (1, 2, -2, 0, -1),
 }
-"""``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity."""
+"""``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity. The reaction
+rates are per volume and per mass of catalyst; what a reactor makes by its size is one of them."""

@@ -14,7 +14,7 @@ from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.consistency import WithoutSuspects
 from core.outlet_analysis.gauss_newton import IntArray
-from core.outlet_analysis.readings import FURTHER, VOLUME
+from core.outlet_analysis.readings import VOLUME
 
 
 @dataclass(frozen=True, eq=False)
@@ -193,9 +193,8 @@ class Estimate:
         """
         problem = self.account.problem
         feeds = len(problem.feed)
-        first = len(self.account.streams) * len(problem.reactions.substances)
         rows = [
-            first + g * FURTHER + VOLUME
+            self.account.writer.place(g, VOLUME)
             for g, stream in enumerate(self.account.streams)
             if (g < feeds) == (side == "feed") and stream.phase == "liquid"
         ]

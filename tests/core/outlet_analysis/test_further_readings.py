@@ -42,7 +42,7 @@ def place(words: str) -> tuple[str, int]:
 
 
 def removes(stream: MeteredStream, substance: int) -> bool:
-    removed = () if stream.analysis is None else stream.analysis.removed
+    removed = [removal for analysis in stream.analyses for removal in analysis.removed]
     return any(r.substance == substance and r.residual == 0 for r in removed)
 
 
@@ -77,13 +77,13 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
     if of["value"]:
         component = Component({names.index(of["value"]): 1.0}, new)
         basis: Any = "mass" if stream.phase == "liquid" else "mole"
-        analysis = stream.analysis or Analysis(basis, (), (side, "analysis"))
+        (analysis,) = stream.analyses or (Analysis(basis, (), (side, "analysis")),)
         analysis = replace(analysis, components=(*analysis.components, component))
         # A stream states its flows or its analysis.
-        assert not any(f.substance is not None for f in stream.flows) or stream.analysis
-        changed = replace(stream, analysis=analysis)
+        assert not any(f.substance is not None for f in stream.flows) or stream.analyses
+        changed = replace(stream, analyses=(analysis,))
     elif of["substance"]:
-        assert stream.analysis is None
+        assert not stream.analyses
         i = names.index(of["substance"])
         changed = replace(stream, flows=(*stream.flows, FlowReading("amount", new, substance=i)))
     elif of["hot"]:
@@ -93,7 +93,7 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
     elif of["dense"]:
         changed = replace(stream, density=new)
     elif of["filled"]:
-        assert stream.analysis is None
+        assert not stream.analyses
         changed = replace(stream, flows=(*stream.flows, FlowReading("volume", new)))
     else:
         assert not any(f.substance is None for f in stream.flows)
@@ -114,16 +114,16 @@ def measured(problem: AccountProblem, values: dict[Any, float]) -> AccountProble
         return Measurement(value, 0.01 * abs(value) + 1e-6, of.subject)
 
     def stream(of: MeteredStream) -> MeteredStream:
-        analysis = of.analysis
-        if analysis is not None:
+        analyses = []
+        for analysis in of.analyses:
             components = tuple(
                 replace(c, measurement=read(c.measurement)) for c in analysis.components
             )
-            analysis = replace(analysis, components=components)
+            analyses.append(replace(analysis, components=components))
         return replace(
             of,
             flows=tuple(replace(f, measurement=read(f.measurement)) for f in of.flows),
-            analysis=analysis,
+            analyses=tuple(analyses),
             temperature=read(of.temperature),
             pressure=read(of.pressure),
             density=read(of.density),
@@ -140,14 +140,14 @@ def thinned(rng: np.random.Generator, problem: AccountProblem) -> AccountProblem
     """The problem with some of its readings gone, in a form that can be stated."""
 
     def stream(of: MeteredStream) -> MeteredStream:
-        assert of.analysis is not None
-        kept = [c for c in of.analysis.components if rng.random() < 0.6]
-        analysis = replace(of.analysis, components=tuple(kept)) if kept else None
-        if analysis is None:
+        (analysis,) = of.analyses
+        kept = [c for c in analysis.components if rng.random() < 0.6]
+        analyses = (replace(analysis, components=tuple(kept)),) if kept else ()
+        if not analyses:
             flows = [f for f in of.flows if f.substance is not None and rng.random() < 0.7]
         else:
             flows = [f for f in of.flows if f.substance is None and rng.random() < 0.7][:1]
-        return replace(of, analysis=analysis, flows=tuple(flows))
+        return replace(of, analyses=analyses, flows=tuple(flows))
 
     return replace(
         problem,
