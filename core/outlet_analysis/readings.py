@@ -302,6 +302,13 @@ class ReadingWriter:
     def flow_reading(self, g: int, reading: FlowReading) -> None:
         """Enter a flow meter's reading."""
         stream = self.streams[g]
+        if reading.design is not None and stream.phase == "liquid":
+            raise refuse(
+                "meter-design-of-liquid",
+                reading.measurement.subject,
+                "found a design density of a meter on a liquid; only the density of a gas follows"
+                " from its composition, temperature and pressure. State the flow corrected",
+            )
         weights = self.masses if reading.kind == "mass" else self.ones
         if reading.substance is None:
             weights = weights * self.own[g]
@@ -387,13 +394,6 @@ class ReadingWriter:
         """
         design, kind = reading.design, reading.kind
         assert design is not None
-        if self.streams[g].phase == "liquid":
-            raise refuse(
-                "meter-design-of-liquid",
-                reading.measurement.subject,
-                "found a design density of a meter on a liquid; only the density of a gas follows"
-                " from its composition, temperature and pressure. State the flow corrected",
-            )
         if kind == "volume" and molar_volume is None:
             raise refuse(
                 "meter-conditions-missing",

@@ -339,7 +339,7 @@ def _meters(found: Estimate) -> Iterator[Note]:
     there = np.atleast_1d(np.isfinite(found.chi_square))
     rows = slice(found.first, found.first + len(there))
     for meter in account.writer.by_pressure:
-        design, kind = meter.reading.design, meter.reading.kind
+        design = meter.reading.design
         amount, mass = (
             np.atleast_1d(found.z @ (form @ account.stream_map))
             for form in (meter.amount, meter.mass)
@@ -347,11 +347,8 @@ def _meters(found: Estimate) -> Iterator[Note]:
         passing = there & (amount > 0) & (mass > 0)
         if design is None or not passing.any():
             continue
-        molar_mass = mass[passing] / amount[passing]
         ratio = meter.ratio[rows][passing] if isinstance(meter.ratio, np.ndarray) else meter.ratio
-        shown = ratio ** design.of_ratio(kind)
-        shown = shown * (molar_mass / design.molar_mass) ** design.of_molar_mass(kind)
-        yield meter_note(meter.reading, 1 / shown, molar_mass)
+        yield meter_note(meter.reading, design, ratio, mass[passing] / amount[passing])
 
 
 def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:

@@ -13,7 +13,7 @@ from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Note, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import FlowReading, Measurement, MeteredStream
+from core.streams.metered import DesignDensity, FlowReading, Measurement, MeteredStream
 from core.streams.stream import Stream, StreamPhase, phase_sum
 
 CONCENTRATIONS = ("concentration", "mass-concentration")
@@ -73,16 +73,25 @@ def direct_flows(stream: MeteredStream, molar_masses: FloatArray) -> FloatArray:
     return np.array(flows)
 
 
-CLOSE_TO_DESIGN = 2.0
+FAR_FROM_DESIGN = 2.0
 """Density over that of a meter's design, or its inverse, from which on the correction is doubted:
 expansion factor and discharge coefficient are those of the design (common practice)."""
 
 
-def meter_note(reading: FlowReading, factors: FloatArray, molar_masses: FloatArray) -> Note:
+def meter_note(
+    reading: FlowReading,
+    design: DesignDensity,
+    ratio: float | FloatArray,
+    molar_masses: FloatArray,
+) -> Note:
     """Return the remark on a differential-pressure meter: what its flow was corrected by.
 
-    ``factors`` are true over shown, ``molar_masses`` (kg/mol) of what passes; each (N,).
+    ``ratio`` is that of its design, one number or (N,), and ``molar_masses``
+    (N,), kg/mol, are those of what passes.
     """
+    over = molar_masses / design.molar_mass
+    density = ratio * over
+    factors = ratio ** -design.of_ratio(reading.kind) * over ** -design.of_molar_mass(reading.kind)
     facts: dict[str, Fact] = {}
     words = []
     for name, values, dimension in (
@@ -95,7 +104,7 @@ def meter_note(reading: FlowReading, factors: FloatArray, molar_masses: FloatArr
         if most != least:
             facts[f"{name}_most"] = Amount(most, dimension)
             words[-1] += f" to {{{name}_most}}"
-    far = float(np.abs(np.log(factors)).max()) > np.log(CLOSE_TO_DESIGN) / 2
+    far = float(np.abs(np.log(density)).max()) > np.log(FAR_FROM_DESIGN)
     return Note(
         "meter-far-from-design" if far else "meter-corrected",
         f"the flow shown is corrected by {words[0]}, from the design density of the meter to that"
@@ -119,9 +128,8 @@ def meter_notes(streams: Sequence[MeteredStream], molar_masses: FloatArray) -> I
         for reading in stream.flows:
             if reading.design is None or reading.substance is None:
                 continue
-            molar_mass = float(molar_masses[reading.substance])
-            shown = reading.design.shown_over_true(reading.kind, molar_mass)
-            yield meter_note(reading, np.array([1 / shown]), np.array([molar_mass]))
+            own = molar_masses[[reading.substance]]
+            yield meter_note(reading, reading.design, reading.design.ratio, own)
 
 
 def stated_volume(stream: MeteredStream) -> float | None:
