@@ -22,6 +22,10 @@ FAR_FROM_DESIGN = 100.0
 """Density over that of the design, or its inverse, that no meter in service is so far from."""
 
 
+LIGHTEST, HEAVIEST = 1e-3, 1.0
+"""kg/mol; no gas that a meter is laid out for is lighter or heavier."""
+
+
 class DesignSchema(ClosedSchema):
     """The gas that a differential-pressure meter was laid out for: constants of the meter."""
 
@@ -153,6 +157,13 @@ class MeterReader:
         molar_mass = self._constant(
             design, "molar_mass", where, (*about, "design"), dimension="mass_per_amount"
         )
+        if molar_mass is not None and not LIGHTEST <= molar_mass <= HEAVIEST:
+            self.reader.fault(
+                "impossible-value",
+                child(where, "molar_mass"),
+                f"found {design['molar_mass'].text!r}; a gas has between 1 and 1000 g/mol, so check"
+                " the unit",
+            )
         if len(self.reader.faults) > kept or molar_mass is None:
             return None
         if not 1 / FAR_FROM_DESIGN < ratio < FAR_FROM_DESIGN:

@@ -439,6 +439,12 @@ REFUSED: list[tuple[str, dict[str, Any], str, str]] = [
         "/feed/meter/design",
     ),
     (
+        "a molar mass in the wrong unit",
+        {"feed__meter__design__molar_mass": "12.8 kg/mol"},
+        "impossible-value",
+        "/feed/meter/design/molar_mass",
+    ),
+    (
         "a vacuum beyond the absolute",
         {"feed__meter__pressure": "-2 barg"},
         "impossible-value",
