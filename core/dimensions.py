@@ -27,8 +27,12 @@ DIMENSIONS: dict[str, Exponents] = {
     "time": (0, 0, 1, 0, 0),
     "frequency": (0, 0, -1, 0, 0),
     "reaction_rate": (0, -3, -1, 0, 1),
+    "reaction_rate_per_mass": (-1, 0, -1, 0, 1),
+    "energy": (1, 2, -2, 0, 0),
+    "power": (1, 2, -3, 0, 0),
     "molar_energy": (1, 2, -2, 0, -1),
     "molar_heat_capacity": (1, 2, -2, -1, -1),
 }
 """``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity;
-``molar_heat_capacity`` an entropy too."""
+``molar_heat_capacity`` an entropy too. The reaction rates are per volume and per mass of catalyst;
+what a reactor makes by its size is one of them."""

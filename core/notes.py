@@ -194,6 +194,16 @@ NOTES: dict[str, Entry] = {
         "Ill-conditioned",
         "The readings barely tell the unknowns apart, as the uncertainty of the answer says.",
     ),
+    "meter-corrected": Entry(
+        "Flow of a meter corrected",
+        "A differential-pressure meter shows a flow for its design density; the account takes the"
+        " flow at the density that the gas has.",
+    ),
+    "meter-far-from-design": Entry(
+        "Meter far from its design",
+        "The gas is more than twice as dense as a differential-pressure meter was laid out for, or"
+        " less than half. Check the conditions and units stated.",
+    ),
     "negative-flow": Entry(
         "Flow below zero",
         "The readings put a flow below zero by more than twice its uncertainty. Look for a wrong"
@@ -243,6 +253,16 @@ NOTES: dict[str, Entry] = {
     "conversion-poorly-known": Entry(
         "Conversion poorly known",
         "The readings say little of the conversion.",
+    ),
+    "space-time-yield-needs-flow": Entry(
+        "Space-time yield needs a flow",
+        "No reading tells how much flows, so that what is made by the size of the reactor is not"
+        " known. State a flow.",
+    ),
+    "size-taken-as-exact": Entry(
+        "Size taken as exact",
+        "The size of the reactor, or the time of the batch, came without an uncertainty and was"
+        " taken as exact. State 'u' or 'u_rel' where it counts.",
     ),
     "closure-not-read": Entry(
         "Closure not read",

@@ -313,6 +313,18 @@ _STREAMS: dict[str, Entry] = {
         " which are never borrowed from the reactor. State 'meter', or the flow in Nm3/h, Sm3/h"
         " or a molar unit.",
     ),
+    "meter-design-of-liquid": Entry(
+        "Design density of a meter on a liquid",
+        "A differential-pressure meter is corrected for the density of a gas, which follows from"
+        " its composition, temperature and pressure; that of a liquid does not. State the flow"
+        " corrected.",
+    ),
+    "flow-basis-ambiguous": Entry(
+        "As analysed, by which analysis?",
+        "A flow counted as analysed stands beside several analyses from which not the same was"
+        " removed. State the flow of the whole stream, or give analyses and flow the same"
+        " removals.",
+    ),
     "volume-contradicts-conditions": Entry(
         "Volume contradicts temperature and pressure",
         "Flows, volume, temperature and pressure of a gas are related by the gas law, and those"

@@ -344,6 +344,19 @@ class AnalysisReader:
         return saturation.value / pressure.value
 
 
+def each_analysis(
+    document: Json, pointer: str, subject: Subject
+) -> Iterator[tuple[Json, str, Subject]]:
+    """Yield each analysis of a stream document, where it stands and what it is to the core."""
+    stated = document.get("analysis", ())
+    place, about = child(pointer, "analysis"), (*subject, "analysis")
+    if isinstance(stated, dict):
+        yield stated, place, about
+        return
+    for k, analysis in enumerate(stated):
+        yield analysis, child(place, k), (*about, k)
+
+
 def analysed_substances(document: Json, pointer: str) -> Iterator[tuple[str, str]]:
     """Yield each substance that an analysis names, and where."""
     lumps = document.get("lumps", {})

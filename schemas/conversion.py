@@ -3,21 +3,23 @@
 from __future__ import annotations
 
 import difflib
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 from marshmallow import fields
 
-from core.errors import Subject
+from core.errors import Note, Subject
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import YieldBasis
+from core.outlet_analysis.space_time_yield import ReactorSize, SizeBasis
 from core.reactions.reaction_set import ReactionSet
 from core.streams.known import Conditions
-from core.streams.metered import MeteredStream
+from core.streams.metered import Measurement, MeteredStream
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import is_batch, read_conditions
-from schemas.fields import Choice, Map, Number, Text, describe
+from schemas.fields import Choice, Map, Number, Quantity, Text, describe
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
 from schemas.streams import Side, StreamReader, StreamSchema, substances_of
@@ -58,6 +60,16 @@ class UncertaintySchema(ClosedSchema):
     )
 
 
+class ReactorSizeSchema(ClosedSchema):
+    """The size of the reactor, by which space-time yields count: one of volume, catalyst_mass."""
+
+    volume = Quantity(metadata=describe("Of the reactor.", examples=["12 m3"]))
+    catalyst_mass = Quantity(metadata=describe("In the reactor.", examples=["9.5 t"]))
+    time = Quantity(
+        metadata=describe("That a batch took, as its space-time yield counts it.", examples=["6 h"])
+    )
+
+
 class ConversionRequest(AccountSchema):
     """Readings of feed and outlet."""
 
@@ -66,6 +78,10 @@ class ConversionRequest(AccountSchema):
     )
     outlet = fields.Nested(
         StreamSchema, required=True, metadata=describe("Out of the reactor: analyses, flows.")
+    )
+    reactor = fields.Nested(
+        ReactorSizeSchema,
+        metadata=describe("Its size; the answer then gives the space-time yields."),
     )
     yields = fields.Nested(YieldsSchema)
     uncertainty = fields.Nested(UncertaintySchema)
@@ -93,6 +109,8 @@ class ConversionQuestion:
         Knows which readings have a default uncertainty.
     stream_ids : tuple of str
         Of the feed streams, then of the outlet streams.
+    size : ReactorSize or None
+        What space-time yields count by, where stated.
     """
 
     problem: AccountProblem
@@ -102,6 +120,7 @@ class ConversionQuestion:
     conditions: Mapping[Side, Conditions | None]
     readings: StreamReader
     stream_ids: tuple[str, ...]
+    size: ReactorSize | None
 
 
 def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
@@ -134,6 +153,7 @@ def _read_question(
     _check_outlet(request["outlet"], reader, reactions, sides["feed"])
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
+    size = _size(request["reactor"], reader, batch) if "reactor" in request else None
     if reader.faults:
         return None
     problem = AccountProblem(
@@ -147,8 +167,61 @@ def _read_question(
     per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
     basis: YieldBasis = yields.get("basis", "key")
     return ConversionQuestion(
-        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids)
+        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids), size
     )
+
+
+SIZES: dict[str, SizeBasis] = {"volume": "reactor-volume", "catalyst_mass": "catalyst-mass"}
+
+
+def _size(document: Json, reader: RequestReader, batch: bool) -> ReactorSize | None:
+    """Return the size of the reactor; None after a fault."""
+    reader.at(("reactor",), "/reactor")
+    stated = [name for name in SIZES if name in document]
+    if len(stated) != 1:
+        found = " and ".join(stated) or "neither"
+        reader.fault(
+            "conflicting-fields" if stated else "field-needed",
+            "/reactor",
+            f"found {found}; state the volume or the catalyst_mass, by which space-time yields are"
+            " to count",
+        )
+        return None
+    if batch and "time" not in document:
+        reader.fault(
+            "field-needed",
+            "/reactor/time",
+            "the space-time yield of a batch needs the time that it took, from charge to charge or"
+            " as you count it",
+        )
+    if not batch and "time" in document:
+        reader.fault(
+            "field-not-used",
+            "/reactor/time",
+            "a flow has its time in it; leave it out",
+        )
+    measured: dict[str, Measurement] = {}
+    for name in document:
+        place, subject = child("/reactor", name), ("reactor", name)
+        dimension = "mass" if name == "catalyst_mass" else name
+        raw = document[name]
+        found_ = reader.quantity(raw, place, subject, dimension, above=0)
+        if found_ is None:
+            continue
+        if found_.u is None and found_.u_shared is None:
+            reader.assumed.append(
+                Note(
+                    "size-taken-as-exact",
+                    f"{raw.text!r} is taken as exact in the space-time yields, since no uncertainty"
+                    " is stated",
+                    subject=subject,
+                )
+            )
+        u = math.hypot(found_.u or 0.0, found_.u_shared or 0.0)
+        measured[name] = Measurement(found_.value, u, subject)
+    if stated[0] not in measured:
+        return None
+    return ReactorSize(SIZES[stated[0]], measured[stated[0]], measured.get("time"))
 
 
 def _check_outlet(

@@ -16,6 +16,7 @@ from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
 from core.outlet_analysis.conversion import ConversionResults
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
+from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
 from core.streams.known import Conditions, in_phase, solids_taken_as_gas
 from core.streams.metered import MeteredStream
 from schemas.answer import ATOMIC_WEIGHTS, Answer
@@ -33,6 +34,14 @@ class RatioSchema(NumberSchema):
     basis = fields.String(required=True, metadata=describe("", enum=["key", "element"]))
     element = fields.String(metadata=describe("On element basis."))
     factor = number("Key equivalents per mole of product.", required=True)
+
+
+class SpaceTimeYieldSchema(NumberSchema):
+    """Moles of a product made by the size of the reactor and time."""
+
+    basis = fields.String(
+        required=True, metadata=describe("", enum=["reactor-volume", "catalyst-mass"])
+    )
 
 
 class ClosureSchema(OpenSchema):
@@ -111,6 +120,11 @@ class ConversionResult(OpenSchema):
     key_produced_by = numbers_by_name(text="Share of each producing reaction, of what is consumed.")
     yields = numbers_by_name(RatioSchema, "By product, per key fed.")
     selectivities = numbers_by_name(RatioSchema, "By product, per key converted.")
+    space_time_yields = numbers_by_name(
+        SpaceTimeYieldSchema,
+        "By product, its own moles made by the size of the reactor and time; where 'reactor' is"
+        " stated.",
+    )
     closure = numbers_by_name(ClosureSchema, "By element.")
     reconciliation = fields.Nested(ReconciliationSchema, required=True)
     without_suspect = fields.Nested(WithoutSuspectSchema)
@@ -118,6 +132,12 @@ class ConversionResult(OpenSchema):
 
 ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
 
+
+RATES: dict[SizeBasis, str] = {
+    "reactor-volume": "reaction_rate",
+    "catalyst-mass": "reaction_rate_per_mass",
+}
+"""Dimension of a space-time yield, by what it counts by."""
 
 ASSUMED = frozenset({"per-mole-of-key", "outlet-placement", "removed-taken-as-absent"})
 """Notes of the core that are assumptions."""
@@ -170,6 +190,8 @@ class _Writer:
                 result[name] = there
         result["yields"] = self._ratios(results.yields.yields)
         result["selectivities"] = self._ratios(results.yields.selectivities)
+        if results.space_time_yields is not None:
+            result["space_time_yields"] = self._space_time_yields(results.space_time_yields)
         if results.closures is not None:
             result["closure"] = self._closure()
         result["reconciliation"] = self._reconciliation()
@@ -314,6 +336,16 @@ class _Writer:
                 number_["factor"] = self.edge.number(factor, "dimensionless")
             ratios[names[i]] = number_
         return ratios
+
+    def _space_time_yields(self, of: SpaceTimeYields) -> Json:
+        names = self.reactions.names
+        dimension = RATES[of.basis]
+        found: Json = {}
+        for i, said in zip(of.products, self._each(of.values, dimension), strict=True):
+            if said is not None:
+                said["basis"] = of.basis
+            found[names[i]] = said
+        return found
 
     def _closure(self) -> Json:
         closures = self.results.closures

@@ -96,7 +96,11 @@ def _counts(subject: Subject, used: Collection[Subject]) -> bool:
     """Whether a reading is one of those used, or stands at the meter of one."""
     if subject in used:
         return True
-    return subject[-2:-1] == ("meter",) and (*subject[:-2], "flow") in used
+    if subject[-2:-1] != ("meter",):
+        return False
+    stream = subject[:-2]
+    flows = (*stream, "flows")
+    return (*stream, "flow") in used or any(one[: len(flows)] == flows for one in used)
 
 
 def _listed(pointers: list[str], most: int = 8) -> str:

@@ -10,32 +10,24 @@ from typing import Literal
 
 from marshmallow import fields
 
-from core.constants import GAS_CONSTANT
 from core.errors import Note, Subject
+from core.outlet_analysis.readings import FRACTIONS
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import Analysis, FlowKind, FlowReading, Measurement, MeteredStream
 from core.streams.stream import StreamPhase
-from schemas.analyses import AnalysisReader, AnalysisSchema, analysed_substances
+from schemas.analyses import AnalysisReader, AnalysisSchema, analysed_substances, each_analysis
 from schemas.edge import Json, RequestReader
-from schemas.fields import Choice, List, Map, Number, Quantity, Text, describe
+from schemas.fields import Choice, List, Map, Number, OneOf, Quantity, Text, describe
+from schemas.meters import MeterReader, MeterSchema
 from schemas.readings import Readings
 from schemas.shape import ClosedSchema, child
 
 MAX_STREAMS = 12
+MAX_ANALYSES = 12
 
 PHASES = ("gas", "liquid")
 
 Side = Literal["feed", "outlet"]
-
-
-class MeterSchema(ClosedSchema):
-    """The conditions at a volumetric gas meter, never borrowed from the reactor."""
-
-    temperature = Quantity(required=True, metadata=describe("At the meter.", examples=["40 degC"]))
-    pressure = Quantity(required=True, metadata=describe("At the meter.", examples=["1.2 barg"]))
-    compressibility = Number(
-        at_least=0.01, at_most=10, load_default=1.0, metadata=describe("Z of the gas at the meter.")
-    )
 
 
 class MeteredStreamSchema(ClosedSchema):
@@ -83,7 +75,17 @@ class MeteredStreamSchema(ClosedSchema):
             " of its analysis (a dry flow beside a dry analysis)."
         ),
     )
-    analysis = fields.Nested(AnalysisSchema)
+    analysis = OneOf(
+        {
+            "array": List(fields.Nested(AnalysisSchema), at_most=MAX_ANALYSES),
+            "otherwise": fields.Nested(AnalysisSchema),
+        },
+        metadata=describe(
+            "What was found in it: one analysis, or a list of them where the stream was analysed"
+            " more than once: repeated laboratory samples, a dry analyser beside a wet one. Each"
+            " has its own basis and removals, and their readings are independent."
+        ),
+    )
     concentrations = Map(
         Quantity(),
         metadata=describe("With volumetric_flow (a batch: volume).", examples=[{"A": "2 kmol/m3"}]),
@@ -94,7 +96,11 @@ class MeteredStreamSchema(ClosedSchema):
     volume = Quantity(metadata=describe("Of a batch, at its own conditions.", examples=["5.2 m3"]))
     density = Quantity(metadata=describe("Of a liquid.", examples=["850 kg/m3"]))
     meter = fields.Nested(
-        MeterSchema, metadata=describe("Conditions at the meter of a volumetric gas flow.")
+        MeterSchema,
+        metadata=describe(
+            "Of a gas: the conditions that a volumetric 'flow' is counted at, or the 'design' of a"
+            " differential-pressure meter of 'flow', or of the one substance in 'flows'."
+        ),
     )
 
 
@@ -134,6 +140,11 @@ class StreamReader:
     def analyses(self) -> AnalysisReader:
         """Reads the analyses of the streams."""
         return AnalysisReader(self.readings, self.reactions)
+
+    @cached_property
+    def meters(self) -> MeterReader:
+        """Reads the meters of the streams."""
+        return MeterReader(self.reader, self.condition)
 
     def metered(
         self, document: Json, pointer: str, subject: Subject, side: Side
@@ -176,13 +187,13 @@ class StreamReader:
 
     def _content(self, document: Json) -> Iterator[int]:
         """Yield the substances that a stream document brings, not those it removes."""
-        analysis = document.get("analysis", {})
-        lumps = analysis.get("lumps", {})
         names = [n for form in FLOW_FORMS for n in document.get(form, ())]
-        for name in analysis.get("values", ()):
-            names.extend(lumps.get(name, [name]))
-        if "balance" in analysis:
-            names.append(analysis["balance"])
+        for analysis, _, _ in each_analysis(document, "", ()):
+            lumps = analysis.get("lumps", {})
+            for name in analysis["values"]:
+                names.extend(lumps.get(name, [name]))
+            if "balance" in analysis:
+                names.append(analysis["balance"])
         yield from (i for i in map(self.reactions.find, names) if i is not None)
 
     def _one(
@@ -207,26 +218,26 @@ class StreamReader:
         form = self._form(document, pointer, side)
         temperature = self.condition(document, "temperature", pointer, subject)
         pressure = self.condition(document, "pressure", pointer, subject)
-        analysis = None
-        if "analysis" in document:
-            place, about = child(pointer, "analysis"), (*subject, "analysis")
-            analysis = self.analyses.analysis(document["analysis"], place, about, phase)
-        elif "concentrations" in document:
-            analysis = self.analyses.concentrations(document, pointer, subject, phase)
+        analyses = tuple(
+            self.analyses.analysis(analysis, place, about, phase)
+            for analysis, place, about in each_analysis(document, pointer, subject)
+        )
+        if not analyses and "concentrations" in document:
+            analyses = (self.analyses.concentrations(document, pointer, subject, phase),)
         flows = tuple(self._flows(document, pointer, subject, phase, form))
         present: frozenset[int] | None
         if form in ("flows", "amounts"):
             present = frozenset([flow.substance for flow in flows if flow.substance is not None])
         elif side == "feed":
-            present = self._fed(document, analysis, elsewhere)
+            present = self._fed(document, analyses, elsewhere)
         else:
-            present = self._leaving(document, analysis)
+            present = self._leaving(document, analyses)
         stream = MeteredStream(
             phase=phase,
             present=present,
             subject=subject,
             flows=flows,
-            analysis=analysis,
+            analyses=analyses,
             temperature=temperature,
             pressure=pressure,
             compressibility=document.get("compressibility", 1.0),
@@ -281,22 +292,23 @@ class StreamReader:
         return self.readings.measurement(found, about, name)
 
     def _fed(
-        self, document: Json, analysis: Analysis | None, elsewhere: frozenset[int]
+        self, document: Json, analyses: tuple[Analysis, ...], elsewhere: frozenset[int]
     ) -> frozenset[int]:
         """Return what a feed stream may hold.
 
-        What was removed before its analysis is unknown rather than absent, unless
+        What was removed before its analyses is unknown rather than absent, unless
         another stream supplies it: process gas measured dry, and steam by mass.
         """
         present = set(self._content(document))
-        if analysis is None:
-            return frozenset(present)
         whole = "flow" in document and document.get("flow_basis") == "whole"
-        for removal in analysis.removed:
+        gone = [(removal, analysis) for analysis in analyses for removal in analysis.removed]
+        absent = set[int]()
+        for removal, analysis in gone:
             i = removal.substance
             if whole or removal.residual > 0 or i not in elsewhere:
                 present.add(i)
-            elif i not in present:
+            elif i not in present and i not in absent:
+                absent.add(i)
                 self.reader.assumed.append(
                     Note(
                         "removed-taken-as-absent",
@@ -307,23 +319,18 @@ class StreamReader:
                 )
         return frozenset(present)
 
-    def _leaving(self, document: Json, analysis: Analysis | None) -> frozenset[int] | None:
+    def _leaving(self, document: Json, analyses: tuple[Analysis, ...]) -> frozenset[int] | None:
         """Return what an outlet stream holds; None where it may hold anything of its phase.
 
-        Flows name all that is in a stream, and so does an analysis that adds up.
+        Flows name all that is in a stream, and so does an analysis that adds up,
+        together with those beside it.
         """
-        if analysis is None:
+        if not analyses:
             named = frozenset(self._content(document))
             return named if any(form in document for form in FLOW_FORMS) else None
-        fractions = [component.measurement.value for component in analysis.components]
-        adds_up = analysis.balance is not None or (
-            "analysis" in document
-            and document["analysis"]["basis"] != "concentration"
-            and abs(sum(fractions) - 1) <= ADDS_UP
-        )
-        if not adds_up:
+        if not any(map(_adds_up, analyses)):
             return None
-        removed = {removal.substance for removal in analysis.removed}
+        removed = {removal.substance for analysis in analyses for removal in analysis.removed}
         return frozenset(self._content(document)) | removed
 
     def _flows(
@@ -332,6 +339,7 @@ class StreamReader:
         total = "amount" if self.batch else "molar_flow"
         mass = "mass" if self.batch else "mass_flow"
         volume = "volume" if self.batch else "volumetric_flow"
+        alone = form in ("flows", "amounts") and len(document[form]) == 1
         if form in ("flows", "amounts"):
             for name, raw in document[form].items():
                 place, about = child(pointer, form, name), (*subject, form, name)
@@ -342,9 +350,17 @@ class StreamReader:
                 kind: FlowKind = "amount" if found.dimension == total else "mass"
                 reading = self.readings.measurement(found, about, "flow")
                 assert reading is not None
-                yield FlowReading(kind, reading, index)
+                flow = FlowReading(kind, reading, index)
+                yield self._by_meter(flow, document, pointer, subject, phase) if alone else flow
         if "flow" in document and form == "analysis":
             yield from self._total(document, pointer, subject, phase, (total, mass, volume))
+        elif "meter" in document and not alone:
+            self.reader.fault(
+                "field-not-used",
+                child(pointer, "meter"),
+                "a meter goes with 'flow', or with the flow of the one substance that 'flows'"
+                " names; leave it out, or give the meter a stream of its own",
+            )
         reading = self.volume(document, pointer, subject, volume)
         if reading is not None:
             yield FlowReading("volume", reading)
@@ -376,38 +392,37 @@ class StreamReader:
         kinds: dict[str, FlowKind] = dict(
             zip(dimensions, ("amount", "mass", "volume"), strict=True)
         )
-        molar_volume = None
-        if kinds[found.dimension] == "volume" and phase == "gas":
-            meter = self._meter(document, pointer, subject)
-            if meter is None:
-                return
-            molar_volume, share = meter
-            # Whatever is wrong with the meter's conditions is wrong with this reading alone.
-            reading = replace(reading, u=math.hypot(reading.u, share * reading.value))
-        yield FlowReading(
-            kinds[found.dimension], reading, as_analysed=as_analysed, molar_volume=molar_volume
-        )
-
-    def _meter(self, document: Json, pointer: str, subject: Subject) -> tuple[float, float] | None:
-        """Return the molar volume at a gas meter, m3/mol, and its relative uncertainty."""
-        place = child(pointer, "meter")
-        if "meter" not in document:
+        flow = FlowReading(kinds[found.dimension], reading, as_analysed=as_analysed)
+        if flow.kind == "volume" and phase == "gas" and "meter" not in document:
             self.reader.fault(
                 "meter-conditions-missing",
                 child(pointer, "flow"),
                 f"found {document['flow'].text!r}, a volume of gas at the meter: state 'meter'"
                 " with its temperature and pressure, or give the flow in Nm3/h, Sm3/h or kmol/h",
             )
-            return None
-        about = (*subject, "meter")
-        temperature = self.condition(document["meter"], "temperature", place, about)
-        pressure = self.condition(document["meter"], "pressure", place, about)
-        if temperature is None or pressure is None:
-            return None
-        z: float = document["meter"]["compressibility"]
-        molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
-        share = math.hypot(temperature.u / temperature.value, pressure.u / pressure.value)
-        return molar_volume, share
+            return
+        yield self._by_meter(flow, document, pointer, subject, phase)
+
+    def _by_meter(
+        self,
+        flow: FlowReading,
+        document: Json,
+        pointer: str,
+        subject: Subject,
+        phase: StreamPhase,
+    ) -> FlowReading:
+        """Return a flow with what its meter makes of it; as it is after a fault."""
+        if "meter" not in document:
+            return flow
+        meter = self.meters.meter(document, pointer, subject, phase, flow.kind)
+        if meter is None:
+            return flow
+        # Whatever is wrong with the meter's conditions is wrong with this reading alone.
+        reading = flow.measurement
+        reading = replace(reading, u=math.hypot(reading.u, meter.u_rel * reading.value))
+        return replace(
+            flow, measurement=reading, molar_volume=meter.molar_volume, design=meter.design
+        )
 
     def density(
         self, document: Json, pointer: str, subject: Subject, phase: StreamPhase
@@ -444,6 +459,14 @@ ADDS_UP = 0.01
 """Distance from 100 % within which the values of an analysis are taken to be all there is."""
 
 
+def _adds_up(analysis: Analysis) -> bool:
+    """Whether the values of an analysis are taken to be all that is in the sample."""
+    fractions = [component.measurement.value for component in analysis.components]
+    return analysis.balance is not None or (
+        analysis.basis in FRACTIONS and abs(sum(fractions) - 1) <= ADDS_UP
+    )
+
+
 def substances_of(document: Json, pointer: str) -> Iterator[tuple[str, str]]:
     """Yield each substance that a stream document names, and where."""
     for i, inner in enumerate(document.get("streams", ())):
@@ -451,5 +474,5 @@ def substances_of(document: Json, pointer: str) -> Iterator[tuple[str, str]]:
     for form in FLOW_FORMS:
         for name in document.get(form, ()):
             yield name, child(pointer, form, name)
-    if "analysis" in document:
-        yield from analysed_substances(document["analysis"], child(pointer, "analysis"))
+    for analysis, place, _ in each_analysis(document, pointer, ()):
+        yield from analysed_substances(analysis, place)

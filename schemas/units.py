@@ -42,6 +42,7 @@ DEFAULT_UNITS: dict[str, str] = {
     "time": "min",
     "frequency": "1/h",
     "reaction_rate": "kmol/(m3 h)",
+    "reaction_rate_per_mass": "mol/(kg h)",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
 }

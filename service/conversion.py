@@ -24,6 +24,10 @@ def answer(document: Any) -> Answer:
     with edge.locating():
         found = estimate(question.problem)
         results = conversion_results(
-            found, basis=question.basis, element=question.element, per_key=question.per_key
+            found,
+            basis=question.basis,
+            element=question.element,
+            per_key=question.per_key,
+            size=question.size,
         )
     return write(question, found, results, edge)

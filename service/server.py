@@ -161,12 +161,15 @@ def _warm_up(app: flask.Flask) -> None:
     waits for it, and a release that cannot compute does not start.
     """
     from schemas.examples import EXAMPLES
+    from service.app import MAX_BODY
 
     for example in EXAMPLES:
         if example.status != 200:
             continue  # shows a refusal
         path = f"/v1/{example.operation}"
-        with app.test_request_context(path, method="POST", json=example.request):
+        with app.test_request_context(path, method="POST", json=example.request) as context:
+            # Examples are computed whatever the largest body is that callers may send.
+            context.request.max_content_length = MAX_BODY
             app.dispatch_request()
 
 

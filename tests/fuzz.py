@@ -573,6 +573,7 @@ def _null_kind(path: str) -> str:
         "extents",
         "key_consumed_by",
         "key_produced_by",
+        "space_time_yields",
     ):
         if f"/{name}/" in path:
             return name
@@ -1029,6 +1030,7 @@ class Maker:
             "volume": ["l"],
             "frequency": ["1/s", "Hz"],
             "reaction_rate": ["mol/(l s)"],
+            "reaction_rate_per_mass": ["kmol/(t h)"],
         }
         chosen = self.rnd.sample(sorted(units), self.rnd.randint(0, 4))
         return {name: self.rnd.choice(units[name]) for name in chosen}
@@ -1066,7 +1068,24 @@ class Maker:
     def as_analysis(
         self, system: System, flows: dict[str, float], u: str | None
     ) -> tuple[dict[str, Any], bool]:
-        """Return a stream that states an analysis of the flows, and whether it is free of noise."""
+        """Return a stream that states analyses of the flows, and whether it is free of noise."""
+        stream, true = self.as_one_analysis(system, flows, u)
+        if self.chance(0.2) and "analysis" in stream:
+            several = [stream["analysis"]]
+            for _ in range(self.rnd.randint(0, 2)):
+                other, no_noise = self.as_one_analysis(system, flows, u)
+                if "analysis" in other:
+                    several.append(other["analysis"])
+                    true = true and no_noise
+                    if "volumetric_flow" in other:
+                        stream.setdefault("volumetric_flow", other["volumetric_flow"])
+            stream["analysis"] = several
+        return stream, true
+
+    def as_one_analysis(
+        self, system: System, flows: dict[str, float], u: str | None
+    ) -> tuple[dict[str, Any], bool]:
+        """Return a stream that states one analysis of the flows."""
         rnd = self.rnd
         true = True
         present = {n: f for n, f in flows.items() if f > 0} or dict(flows)
@@ -1151,7 +1170,44 @@ class Maker:
             whole = sum((sample if stream.get("flow_basis") else flows).values())
             stream["flow"] = self.quantity(whole * 1000 * 8.31446261815324 * t / p, "m3/h", u)
             stream["meter"] = {"temperature": "300 K", "pressure": "2 bar"}
+        elif system.phase == "gas" and self.chance(0.2) and "flow" in stream:
+            passing = sample if stream.get("flow_basis") else flows
+            stream.update(self.by_design(system, passing, u))
         return stream, true
+
+    def by_design(self, system: System, passing: dict[str, float], u: str | None) -> dict[str, Any]:
+        """Return the flow that a differential-pressure meter shows, and the meter."""
+        rnd = self.rnd
+        moles = sum(passing.values())
+        molar_mass = sum(f * system.masses[n] for n, f in passing.items()) / moles
+        t, p, z = rnd.uniform(280, 500), rnd.uniform(1, 30), rnd.choice([1.0, 0.9])
+        td, pd, zd = rnd.uniform(280, 500), rnd.uniform(1, 30), rnd.choice([1.0, 0.95])
+        md = molar_mass * rnd.uniform(0.5, 2)
+        compensated = rnd.sample(["temperature", "pressure"], rnd.randint(0, 2))
+        density = p * molar_mass / (z * t)
+        of_design = (
+            (p if "pressure" in compensated else pd)
+            * md
+            / (zd * (t if "temperature" in compensated else td))
+        )
+        mass = moles * molar_mass * math.sqrt(of_design / density)
+        design = {"molar_mass": f"{md!r} g/mol", "compressibility": zd}
+        meter: dict[str, Any] = {"compressibility": z, "design": design}
+        kind = rnd.choice(["kmol/h", "kg/h", "m3/h"])
+        for name, at, of, unit in (("temperature", t, td, "K"), ("pressure", p, pd, "bar")):
+            if name not in compensated or kind == "m3/h" or self.chance(0.3):
+                meter[name] = f"{at!r} {unit}"
+            if name not in compensated or self.chance(0.3):
+                design[name] = f"{of!r} {unit}"
+        if compensated or self.chance(0.1):
+            meter["compensated"] = compensated
+        shown = {
+            "kmol/h": mass / md,
+            "kg/h": mass,
+            # kg/h over kg/m3, from kg/kmol, bar and K
+            "m3/h": mass / (of_design * 1e5 / 8314.46261815324),
+        }[kind]
+        return {"flow": self.quantity(shown, kind, u), "meter": meter}
 
     def side(
         self, system: System, flows: dict[str, float], analysed: float, u: str | None
@@ -1170,7 +1226,7 @@ class Maker:
                 if self.chance(0.5):
                     s["id"] = f"s{len(streams)}"
                 streams.append(s)
-                true = true and t and not s.get("analysis", {}).get("removed")
+                true = true and t and not any(a.get("removed") for a in _analyses(s))
             return {"phase": system.phase, "streams": streams}, true
         if self.chance(analysed):
             return self.as_analysis(system, flows, u)
@@ -1183,7 +1239,7 @@ class Maker:
         made["feed"], t1 = self.side(system, fed, 0.3, u)
         if _named(made["feed"]) != set(fed):
             t1 = False  # what the feed does not name is taken not to be there
-        if made["feed"].get("analysis", {}).get("removed"):
+        if any(a.get("removed") for a in _analyses(made["feed"])):
             t1 = False  # what was removed from the sample of a feed is taken not to be there
         out = {n: f for n, f in left.items() if f > 0 or self.chance(0.5)} or left
         made["outlet"], t2 = self.side(system, out, 0.8, u)
@@ -1207,6 +1263,15 @@ class Maker:
                 ]
             )
         if self.chance(0.2):
+            made["reactor"] = self.rnd.choice(
+                [
+                    {"volume": "12 m3"},
+                    {"volume": {"value": 12, "unit": "m3", "u_rel": self.rnd.choice([0.02, 0.6])}},
+                    {"catalyst_mass": "9.5 t"},
+                    {"catalyst_mass": "9.5 t", "time": "2 h"},
+                ]
+            )
+        if self.chance(0.2):
             made["uncertainty"] = {"coverage": self.rnd.choice([0.51, 0.9, 0.9999, 0.95])}
         truth = (fed[system.key] - left[system.key]) / fed[system.key] if fed[system.key] else None
         if self.chance(0.3):
@@ -1220,7 +1285,7 @@ class Maker:
             (holder, name)
             for side in ("feed", "outlet")
             for stream in made[side].get("streams", [made[side]])
-            for holder in (stream.get("flows", {}), stream.get("analysis", {}).get("values", {}))
+            for holder in (stream.get("flows", {}), *(a["values"] for a in _analyses(stream)))
             for name in holder
         ]
         if not readings:
@@ -1898,13 +1963,20 @@ def _named(stream: Json) -> set[str]:
     parts = stream.get("streams", [stream])
     found = []
     for part in parts:
-        analysis = part.get("analysis", {})
-        lumps = analysis.get("lumps", {})
-        names = set(part.get("flows", ())) | {analysis.get("balance", "")} - {""}
-        for name in analysis.get("values", ()):
-            names |= set(lumps[name]) if name in lumps else {name}
+        names = set(part.get("flows", ()))
+        for analysis in _analyses(part):
+            lumps = analysis.get("lumps", {})
+            names |= {analysis.get("balance", "")} - {""}
+            for name in analysis["values"]:
+                names |= set(lumps[name]) if name in lumps else {name}
         found.append(names)
     return set.intersection(*found)
+
+
+def _analyses(stream: Json) -> list[Json]:
+    """Analyses that a stream states, one or several."""
+    stated = stream.get("analysis", [])
+    return stated if isinstance(stated, list) else [stated]
 
 
 def _fraction(x: float) -> str:

@@ -8,7 +8,7 @@ construction:
     sum of outlets = sum of feeds + nu' xi
 
 Beside them stand the volumetric flow of a liquid, the temperature and pressure
-of a gas whose concentrations are read, and the scale of a normalised analysis.
+of a gas whose concentrations are read, and the scale of each normalised analysis.
 Every flow is a linear form of the unknowns.
 """
 
@@ -26,7 +26,6 @@ from core.errors import Subject, refuse
 from core.outlet_analysis.analysis_sums import AnalysisSum, analysis_sums
 from core.outlet_analysis.budget import over_budget
 from core.outlet_analysis.readings import (
-    FURTHER,
     PRESSURE,
     SCALE,
     TEMPERATURE,
@@ -45,7 +44,6 @@ FURTHER_KINDS: dict[int, Kind] = {
     VOLUME: "volume",
     TEMPERATURE: "temperature",
     PRESSURE: "pressure",
-    SCALE: "scale",
 }
 
 
@@ -83,7 +81,8 @@ class AccountProblem:
 class Unknown:
     """One unknown: of ``stream`` (a flow, or a further quantity), or an extent.
 
-    ``index`` is that of the substance or of the reaction.
+    ``index`` is that of the substance, of the reaction, or of the analysis that
+    has a scale.
     """
 
     kind: Kind
@@ -213,8 +212,8 @@ def named(stream: MeteredStream) -> list[Subject]:
     of = [reading.measurement.subject for reading in stream.flows]
     if stream.density is not None:
         of.append(stream.density.subject)
-    if stream.analysis is not None:
-        of += [component.measurement.subject for component in stream.analysis.components]
+    for analysis in stream.analyses:
+        of += [component.measurement.subject for component in analysis.components]
     return of
 
 
@@ -228,10 +227,11 @@ def in_order(stream: MeteredStream) -> MeteredStream:
     def place(of: FlowReading | Component) -> tuple[str, ...]:
         return tuple(map(str, of.measurement.subject))
 
-    analysis = stream.analysis
-    if analysis is not None:
-        analysis = replace(analysis, components=tuple(sorted(analysis.components, key=place)))
-    return replace(stream, flows=tuple(sorted(stream.flows, key=place)), analysis=analysis)
+    analyses = tuple(
+        replace(analysis, components=tuple(sorted(analysis.components, key=place)))
+        for analysis in stream.analyses
+    )
+    return replace(stream, flows=tuple(sorted(stream.flows, key=place)), analyses=analyses)
 
 
 def release_outlet(account: Account, absent: Sequence[int] = ()) -> Account:
@@ -344,7 +344,6 @@ def _assemble(
     """Lay out the unknowns; ``released`` are the tied streams of an unconnected outlet."""
     nu = problem.reactions.nu
     count, feeds = len(problem.reactions.substances), len(problem.feed)
-    streams = (*problem.feed, *problem.outlet)
     columns = _Columns()
     by_name = sorted(range(count), key=problem.reactions.names.__getitem__)
     entries: list[tuple[int, int, float]] = []  # row of the stream space, column, coefficient
@@ -389,14 +388,13 @@ def _assemble(
             entries.extend((row, column, value) for column, value in remainder.items())
             left[i] = total[i]
 
-    start = len(streams) * count
     entries.extend(
-        (start + g * FURTHER + quantity, column, 1.0)
+        (writer.place(g, quantity), column, 1.0)
         for g, quantity, column in _further(problem, readings, columns)
     )
 
     n = len(columns.unknowns)
-    stream_map = np.zeros((start + len(streams) * FURTHER, n))
+    stream_map = np.zeros((writer.width, n))
     for row, column, value in entries:
         stream_map[row, column] += value
     feed_map, outlet_map = np.zeros((count, n)), np.zeros((count, n))
@@ -450,6 +448,8 @@ def _further(
     if sharing >= 0:
         found += [(sharing, VOLUME, column_of[g]) for g in liquid_feeds]
     for g, quantity in sorted(readings.used):
-        if quantity != VOLUME:
+        if quantity >= SCALE:
+            found.append((g, quantity, columns.add("scale", g, quantity - SCALE)))
+        elif quantity != VOLUME:
             found.append((g, quantity, columns.add(FURTHER_KINDS[quantity], g)))
     return found

@@ -64,10 +64,9 @@ def analysis_sums(readings: Readings, writer: ReadingWriter) -> tuple[AnalysisSu
 
 def _sums(readings: Readings, writer: ReadingWriter) -> Iterator[AnalysisSum]:
     proper = not readings.bound.any() and bool(np.isfinite(readings.measured).all())
-    for g, place in writer.analyses.items():
+    for (g, which), place in writer.places.items():
         stream, of_feed = writer.streams[g], g < writer.feeds
-        analysis = stream.analysis
-        assert analysis is not None
+        analysis = stream.analyses[which]
         if analysis.normalised or analysis.basis not in FRACTIONS:
             continue
         weights = [component.weights for component in analysis.components]

@@ -17,6 +17,11 @@ from core.outlet_analysis.closure import Closures, element_closures
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
+from core.outlet_analysis.space_time_yield import (
+    ReactorSize,
+    SpaceTimeYields,
+    space_time_yields,
+)
 from core.reactions.reaction_set import ReactionSet
 
 YieldBasis = Literal["key", "element"]
@@ -68,6 +73,8 @@ class ConversionResults:
         key; each reaction stands in one of the two.
     yields : Yields
     closures : Closures or None
+    space_time_yields : SpaceTimeYields or None
+        Of a single sample, where the size of the reactor is stated.
     without_suspects : tuple of (removed readings, conversion)
         For each way to leave out one reading of every suspect set.
     notes : tuple of Note
@@ -79,6 +86,7 @@ class ConversionResults:
     key_produced_by: Uncertain | None
     yields: Yields
     closures: Closures | None
+    space_time_yields: SpaceTimeYields | None
     without_suspects: tuple[tuple[tuple[int, ...], Uncertain], ...]
     notes: tuple[Note, ...]
 
@@ -90,6 +98,7 @@ def conversion_results(
     element: str | None = None,
     per_key: Mapping[int, float] | None = None,
     closures: bool = True,
+    size: ReactorSize | None = None,
 ) -> ConversionResults:
     """Return conversion, yields, selectivities and closures of an estimate with an outlet.
 
@@ -104,6 +113,8 @@ def conversion_results(
         Moles of key that a mole of product stands for, where the caller says.
     closures : bool
         Whether to form the element closures, which take an estimation more.
+    size : ReactorSize or None
+        What to count space-time yields by, of a single sample.
 
     Raises
     ------
@@ -154,6 +165,9 @@ def conversion_results(
             part(1 + count, 1 + 2 * count, nowhere),
         ),
         closures=element_closures(found) if closures else None,
+        space_time_yields=None
+        if size is None
+        else space_time_yields(found, products_of(reactions, key), size),
         without_suspects=tuple(
             (
                 way.removed,
@@ -174,6 +188,8 @@ def conversion_results(
     notes += _null_notes(found, results)
     if results.closures is not None:
         notes += results.closures.notes
+    if results.space_time_yields is not None:
+        notes += results.space_time_yields.notes
     return ConversionResults(**{**vars(results), "notes": tuple(notes)})
 
 
@@ -235,6 +251,12 @@ def makes(reactions: ReactionSet, key: int, j: int) -> list[int]:
     nu = reactions.nu[j]
     turned = reactions.reactions[j].reversible and nu[key] > 0
     return [int(i) for i in np.flatnonzero(nu < 0 if turned else nu > 0) if i != key]
+
+
+def products_of(reactions: ReactionSet, key: int) -> tuple[int, ...]:
+    """Substances that some reaction makes, as :func:`makes` has it."""
+    made = {i for j in range(len(reactions.reactions)) for i in makes(reactions, key, j)}
+    return tuple(sorted(made))
 
 
 @lru_cache(maxsize=128)

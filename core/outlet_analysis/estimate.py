@@ -14,7 +14,7 @@ from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.consistency import WithoutSuspects
 from core.outlet_analysis.gauss_newton import IntArray
-from core.outlet_analysis.readings import FURTHER, VOLUME
+from core.outlet_analysis.readings import VOLUME
 
 
 @dataclass(frozen=True, eq=False)
@@ -191,17 +191,22 @@ class Estimate:
         Not a number where the readings do not tell it; None where none of
         them speaks of it.
         """
+        form = self.liquid_volume_form(side)
+        if form is None:
+            return None
+        told = self.told[..., form != 0].all(axis=-1)
+        return np.asarray(np.where(told, self.z @ form, np.nan))
+
+    def liquid_volume_form(self, side: Literal["feed", "outlet"]) -> FloatArray | None:
+        """That volumetric flow in terms of the unknowns, shape (n,)."""
         problem = self.account.problem
         feeds = len(problem.feed)
-        first = len(self.account.streams) * len(problem.reactions.substances)
         rows = [
-            first + g * FURTHER + VOLUME
+            self.account.writer.place(g, VOLUME)
             for g, stream in enumerate(self.account.streams)
             if (g < feeds) == (side == "feed") and stream.phase == "liquid"
         ]
         forms = self.account.stream_map[rows]
         if not rows or not forms.any(axis=1).all():
             return None
-        form = forms.sum(axis=0)
-        told = self.told[..., form != 0].all(axis=-1)
-        return np.asarray(np.where(told, self.z @ form, np.nan))
+        return np.asarray(forms.sum(axis=0))

@@ -18,6 +18,7 @@ from core.streams.known import (
     direct_flows,
     is_direct,
     join_streams,
+    meter_notes,
     solids_taken_as_gas,
 )
 from core.streams.metered import MeteredStream
@@ -78,7 +79,10 @@ def known_feed(
             estimated=False,
             per_mole_of_key=False,
             assumed=assumed,
-            notes=solids_taken_as_gas(reactions, conditions.phase),
+            notes=(
+                *solids_taken_as_gas(reactions, conditions.phase),
+                *meter_notes(streams, reactions.molar_masses),
+            ),
         )
     found = estimate_feed(reactions, key, tuple(streams), batch)
     each = _stream_flows(reactions, found, conditions)

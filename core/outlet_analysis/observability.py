@@ -23,7 +23,6 @@ from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import (
     FRACTIONS,
-    FURTHER,
     VOLUME,
     ReadingWriter,
     describe_stream,
@@ -149,13 +148,14 @@ def without_columns(directions: FloatArray, columns: IntArray) -> FloatArray:
 
 def _removed_from_feed(account: Account) -> list[tuple[int, int]]:
     """Feed stream and substance of everything that was fully removed and may be there."""
-    return [
+    found = [
         (g, removal.substance)
         for g, stream in enumerate(account.problem.feed)
-        if stream.analysis is not None
-        for removal in stream.analysis.removed
+        for analysis in stream.analyses
+        for removal in analysis.removed
         if removal.residual == 0 and removal.substance in fed_in(stream)
     ]
+    return list(dict.fromkeys(found))
 
 
 @dataclass(frozen=True, eq=False)
@@ -315,21 +315,21 @@ class _Further:
         rows = self.account.stream_map[g * count : (g + 1) * count]
         carried = np.flatnonzero(np.any(rows != 0, axis=1)).tolist()
         by_substance = {f.substance for f in stream.flows if f.substance is not None}
-        if stream.analysis is not None or not by_substance:
+        if stream.analyses or not by_substance:
             self._analysed(g, where, carried)
-        if stream.analysis is None:
+        if not stream.analyses:
             for i in carried:
                 if i not in by_substance:
                     self._flow(g, FlowReading("amount", BLANK, substance=i))
                     words = f"the {self.flow_words['amount']} of {self.names[i]} in {where}"
                     self.note(words, (g, "form", "flows"))
         elif g < self.feeds:
-            for removal in stream.analysis.removed:
-                if removal.residual == 0 and removal.substance in carried:
-                    self._flow(g, FlowReading("amount", BLANK, substance=removal.substance))
+            for stream_, i in _removed_from_feed(self.account):
+                if stream_ == g and i in carried:
+                    self._flow(g, FlowReading("amount", BLANK, substance=i))
                     self.note(
-                        f"the {self.flow_words['amount']} of {self.names[removal.substance]}, as a"
-                        " feed stream of its own"
+                        f"the {self.flow_words['amount']} of {self.names[i]}, as a feed stream of"
+                        " its own"
                     )
         self._volume(g, where)
 
@@ -339,29 +339,35 @@ class _Further:
     def _analysed(self, g: int, where: str, carried: list[int]) -> None:
         stream, writer = self.streams[g], self.writer
         basis: Basis = "mass" if stream.phase == "liquid" else "mole"
-        analysis = stream.analysis or Analysis(basis, (), stream.subject)
-        known = {next(iter(c.weights)) for c in analysis.components if len(c.weights) == 1}
-        known |= {removal.substance for removal in analysis.removed}
-        constant, powers, _ = writer.divisor(g, analysis)
-        share = "fraction" if analysis.basis in FRACTIONS else "concentration"
-        place = "an analysis of" if stream.analysis is None else "the analysis of"
-        for i in carried:
-            # What is not of the stream's phase is read as part of it only once it has a value.
-            if i not in known and writer.own[g][i]:
-                form = writer.counted(g, analysis, {i: 1.0})
-                writer.add(g, BLANK, form, powers, constant=constant)
-                self.note(
-                    f"the {share} of {self.names[i]} in {place} {where}", (g, "form", "analysis")
-                )
+        analyses = stream.analyses or (Analysis(basis, (), stream.subject),)
+        for k, analysis in enumerate(analyses):
+            known = {next(iter(c.weights)) for c in analysis.components if len(c.weights) == 1}
+            known |= {removal.substance for removal in analysis.removed}
+            constant, powers, _ = writer.divisor(g, analysis)
+            share = "fraction" if analysis.basis in FRACTIONS else "concentration"
+            place = "the analysis of" if stream.analyses else "an analysis of"
+            if len(analyses) > 1:
+                place = f"analysis {k + 1} of"
+            for i in carried:
+                # What is not of the stream's phase is read as part of it only once it has a value.
+                if i not in known and writer.own[g][i]:
+                    form = writer.counted(g, analysis, {i: 1.0})
+                    writer.add(g, BLANK, form, powers, constant=constant)
+                    self.note(
+                        f"the {share} of {self.names[i]} in {place} {where}",
+                        (g, "form", "analysis"),
+                    )
         if any(reading.substance is None for reading in stream.flows):
             return
+        analysis = analyses[0]
         kind: FlowKind = "mass" if analysis.basis == "mass" else "amount"
         if stream.phase == "liquid" and analysis.basis not in FRACTIONS:
             kind = "volume"
         self._flow(g, FlowReading(kind, BLANK))
         analysed: _Claim = (g, "form", "analysis")
         self.note(f"the total {self.flow_words[kind]} of {where}", analysed, (g, "flow", "whole"))
-        if analysis.removed and kind != "volume":
+        alike = len({frozenset(one.removed) for one in analyses}) == 1
+        if analysis.removed and alike and kind != "volume":
             self._flow(g, FlowReading(kind, BLANK, as_analysed=True))
             self.note(
                 f"the {self.flow_words[kind]} of {where} as analysed", (g, "flow", "as-analysed")
@@ -369,7 +375,7 @@ class _Further:
 
     def _volume(self, g: int, where: str) -> None:
         stream, writer = self.streams[g], self.writer
-        place = len(self.streams) * len(self.names) + g * FURTHER + VOLUME
+        place = writer.place(g, VOLUME)
         if not self.account.stream_map[place].any():
             return
         if stream.phase == "liquid":
@@ -381,7 +387,7 @@ class _Further:
             if stream.density is None and not shared:
                 writer.density(g, BLANK)
                 self.note(f"the density of {where}")
-            if stream.analysis is None:
+            if not stream.analyses:
                 self._flow(g, FlowReading("volume", BLANK))
                 self.note(f"the {self.flow_words['volume']} of {where}", (g, "form", "flows"))
         elif not writer.has_conditions(g):

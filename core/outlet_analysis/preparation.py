@@ -21,7 +21,7 @@ from core.outlet_analysis.account import Account
 from core.outlet_analysis.budget import NEARLY_EXACT
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
-from core.outlet_analysis.readings import ABOVE, BELOW, FURTHER, MOLAR_DENSITY, VOLUME
+from core.outlet_analysis.readings import ABOVE, BELOW, MOLAR_DENSITY, VOLUME
 
 BLOCK = 2048
 """Samples estimated at once: enough to fill the processor, few enough to stay in its cache."""
@@ -148,8 +148,8 @@ def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
         if unknown.kind == "volume":
             nominal[:, column] = _volume(block, unknown.stream, flow)
         elif unknown.kind == "scale":
-            peaks = (readings.stream == unknown.stream) & ~readings.flow & (readings.cleared >= 0)
-            values = np.where(active[:, :-1] & peaks, measured[:, :-1], 0.0).sum(axis=1)
+            peaks = account.writer.places[unknown.stream, unknown.index]
+            values = np.where(active[:, peaks], measured[:, peaks], 0.0).sum(axis=1)
             nominal[:, column] = np.where(values > 0, values, 1.0)
         else:
             reading = getattr(account.streams[unknown.stream], unknown.kind)
@@ -162,9 +162,9 @@ def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
 def _volume(block: Block, g: int, flow: FloatArray) -> FloatArray:
     """Order of magnitude of a stream's volumetric flow, shape (N,)."""
     account, active, measured = block.account, block.active, block.measured
-    readings, count = account.readings, len(account.problem.reactions.substances)
+    readings = account.readings
     of = readings.stream == g
-    place = len(account.streams) * count + g * FURTHER + VOLUME
+    place = account.writer.place(g, VOLUME)
     direct = of & readings.flow & (readings.forms.numerators[:, place] != 0)
     guess = flow / MOLAR_DENSITY[account.streams[g].phase]
     for row in np.flatnonzero(direct).tolist():

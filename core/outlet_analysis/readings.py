@@ -1,8 +1,8 @@
 """From metered streams to forms: what each reading counts, and against what.
 
 The forms are written over the *stream space*: the flows of every substance in
-every metered stream, one block of S for each, then four more quantities a
-stream (volumetric flow, temperature, pressure, scale of a normalised
+every metered stream, one block of S for each, then more quantities a
+stream (volumetric flow, temperature, pressure, scale of each normalised
 analysis). Which unknowns stand behind them is the account's affair
 (:mod:`core.outlet_analysis.account`), so the same forms serve the reconciled
 account and the one that leaves feed and outlet unconnected.
@@ -33,8 +33,8 @@ FRACTIONS = ("mole", "mass", "volume")
 """Bases whose values are parts of a whole."""
 
 VOLUME, TEMPERATURE, PRESSURE, SCALE = range(4)
-"""Places of a stream's further quantities in the stream space."""
-FURTHER = 4
+"""Places of a stream's further quantities in the stream space; the scale of its analysis ``k``
+stands at ``SCALE + k``."""
 
 MOLAR_DENSITY = {"liquid": 2e4, "gas": 40.0}
 """mol/m3, orders of magnitude for first guesses only."""
@@ -52,12 +52,15 @@ class Series:
         ``BELOW``, ``ABOVE`` or 0; None where all are readings proper.
     molar_volume : ndarray, shape (N,), or None
         m3/mol at a gas meter's own conditions, where they vary.
+    density_ratio : ndarray, shape (N,), or None
+        ``ratio`` of the design of a differential-pressure meter, where it varies.
     """
 
     value: FloatArray
     u: FloatArray
     bound: NDArray[np.int8] | None = None
     molar_volume: FloatArray | None = None
+    density_ratio: FloatArray | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,6 +117,20 @@ def describe_stream(streams: tuple[MeteredStream, ...], feeds: int, g: int) -> s
     return f"the {role}" if count == 1 else f"{role} stream {g - first + 1}"
 
 
+@dataclass(frozen=True, eq=False)
+class DifferentialPressure:
+    """A flow read by differential pressure, and what passes its meter as forms.
+
+    ``ratio``, one number or (N,), is that of its design; ``amount`` (mol/s) and
+    ``mass`` (kg/s) are over the stream space.
+    """
+
+    reading: FlowReading
+    ratio: float | FloatArray
+    amount: FloatArray
+    mass: FloatArray
+
+
 @dataclass
 class ReadingWriter:
     """Writes readings of metered streams as forms over the stream space."""
@@ -133,14 +150,18 @@ class ReadingWriter:
     bases: list[FloatArray] = field(default_factory=list)
     known: list[bool] = field(default_factory=list)
     used: set[tuple[int, int]] = field(default_factory=set)
-    analyses: dict[int, slice] = field(default_factory=dict)
-    """Places of the values of each stream's analysis among the readings."""
+    corrections: set[int] = field(default_factory=set)
+    """Bases whose powers together are a number near 1: a molar mass over that of a design."""
+    by_pressure: list[DifferentialPressure] = field(default_factory=list)
+    places: dict[tuple[int, int], slice] = field(default_factory=dict)
+    """Where the values of each analysis of each stream stand among the readings."""
 
     def __post_init__(self) -> None:
         self.count = len(self.reactions.substances)
         self.masses = self.reactions.molar_masses
         self.ones = np.ones(self.count)
-        self.width = len(self.streams) * (self.count + FURTHER)
+        self.further_count = SCALE + max([1, *(len(s.analyses) for s in self.streams)])
+        self.width = len(self.streams) * (self.count + self.further_count)
         self.base_index: dict[tuple[int | str, ...], int] = {}
         self.own = [self.own_phase(stream) for stream in self.streams]
 
@@ -150,14 +171,14 @@ class ReadingWriter:
         """Weights 1 of the substances that a total of the stream counts, else 0.
 
         What is stated to be of another phase travels with the stream but is
-        not part of it, unless its own analysis reads it or makes up its
+        not part of it, unless an analysis of its own reads it or makes up its
         balance with it.
         """
         read = set[int]()
-        if stream.analysis is not None:
-            read.update(*(component.weights for component in stream.analysis.components))
-            if stream.analysis.balance is not None:
-                read.add(stream.analysis.balance)
+        for analysis in stream.analyses:
+            read.update(*(component.weights for component in analysis.components))
+            if analysis.balance is not None:
+                read.add(analysis.balance)
         return np.array(
             [
                 1.0 if substance.phase in (None, stream.phase) or i in read else 0.0
@@ -175,8 +196,12 @@ class ReadingWriter:
         """Return the form that is a further quantity of stream ``g``."""
         self.used.add((g, quantity))
         form = np.zeros(self.width)
-        form[len(self.streams) * self.count + g * FURTHER + quantity] = 1.0
+        form[self.place(g, quantity)] = 1.0
         return form
+
+    def place(self, g: int, quantity: int) -> int:
+        """Return the place of a further quantity of stream ``g`` in the stream space."""
+        return len(self.streams) * self.count + g * self.further_count + quantity
 
     def base(self, name: tuple[int | str, ...], form: FloatArray, known: bool = False) -> int:
         """Return the index of a base, entered once."""
@@ -190,15 +215,14 @@ class ReadingWriter:
         """Return the index of the base that is a further quantity of stream ``g``."""
         return self.base((g, quantity), self.further(g, quantity), quantity != VOLUME)
 
-    def sampled(self, g: int, weights: FloatArray) -> FloatArray:
+    def sampled(self, g: int, weights: FloatArray, analysis: Analysis) -> FloatArray:
         """Weights on the stream's flows of what the analyser saw of it.
 
         Only substances of the stream's own phase have a share in what is left
         of a removed one. A removed substance of residual r is r of the moles left, so each mole
         of the others brings r/(1 - sum of residuals) of it.
         """
-        analysis = self.streams[g].analysis
-        if analysis is None or not analysis.removed:
+        if not analysis.removed:
             return weights
         left = 1 - sum(removal.residual for removal in analysis.removed)
         brought = sum(
@@ -209,10 +233,16 @@ class ReadingWriter:
             seen[removal.substance] = 0.0
         return np.asarray(seen)
 
-    def sample_total(self, g: int, weights: FloatArray, name: str) -> int:
+    def sample_total(self, g: int, weights: FloatArray, name: str, analysis: Analysis) -> int:
         """Return the index of the base that is the total of what was analysed."""
-        total = self.flows(g, self.sampled(g, weights * self.own[g]))
-        return self.base((g, name, "sample"), total)
+        total = self.flows(g, self.sampled(g, weights * self.own[g], analysis))
+        return self.base((g, name, "sample", self.which(g, analysis)), total)
+
+    def which(self, g: int, analysis: Analysis) -> int:
+        """Return the place of an analysis among those of stream ``g``."""
+        analyses = self.streams[g].analyses
+        # One that could be made of a stream without any is the first.
+        return next((k for k, one in enumerate(analyses) if one is analysis), 0)
 
     def stream_total(self, g: int) -> int:
         """Return the index of the base that is the total of the whole stream."""
@@ -256,8 +286,8 @@ class ReadingWriter:
             self.flow_reading(g, reading)
         if stream.density is not None:
             self.density(g, stream.density)
-        if stream.analysis is not None:
-            self.analysis(g, stream.analysis)
+        for analysis in stream.analyses:
+            self.analysis(g, analysis)
 
     def conditions(self) -> None:
         """Enter the temperatures and pressures that the readings so far speak of."""
@@ -272,13 +302,21 @@ class ReadingWriter:
     def flow_reading(self, g: int, reading: FlowReading) -> None:
         """Enter a flow meter's reading."""
         stream = self.streams[g]
+        if reading.design is not None and stream.phase == "liquid":
+            raise refuse(
+                "meter-design-of-liquid",
+                reading.measurement.subject,
+                "found a design density of a meter on a liquid; only the density of a gas follows"
+                " from its composition, temperature and pressure. State the flow corrected",
+            )
         weights = self.masses if reading.kind == "mass" else self.ones
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
             weights = self.component({reading.substance: 1.0}, weights)
-        if reading.as_analysed:
-            weights = self.sampled(g, weights)
+        analysis = self.metered_as(g, reading)
+        if analysis is not None:
+            weights = self.sampled(g, weights, analysis)
         of_volume = reading.kind == "volume"
         if of_volume and stream.phase == "liquid":
             if reading.substance is not None:
@@ -296,7 +334,9 @@ class ReadingWriter:
         molar_volume: float | FloatArray | None = reading.molar_volume
         if of_series is not None and of_series.molar_volume is not None:
             molar_volume = of_series.molar_volume
-        if of_volume and molar_volume is not None:
+        if reading.design is not None:
+            self.by_design(g, reading, form, molar_volume, analysis)
+        elif of_volume and molar_volume is not None:
             self.add(g, reading.measurement, form, constant=molar_volume, flow=True)
         elif of_volume and self.has_conditions(g):
             powers = [
@@ -314,12 +354,80 @@ class ReadingWriter:
                     " and pressure that the volume is counted at",
                 )
             powers = []
-            if reading.as_analysed and stream.analysis is not None and stream.analysis.removed:
-                sample = self.sample_total(g, self.ones, "amount")
+            if analysis is not None and analysis.removed:
+                sample = self.sample_total(g, self.ones, "amount", analysis)
                 powers = [(sample, 1.0), (self.stream_total(g), -1.0)]
             self.add(g, reading.measurement, self.further(g, VOLUME), powers, flow=True)
         else:
             self.add(g, reading.measurement, form, flow=True)
+
+    def metered_as(self, g: int, reading: FlowReading) -> Analysis | None:
+        """Return the analysis whose sample a flow counts; None where it counts all there is."""
+        analyses = self.streams[g].analyses
+        if not reading.as_analysed or not analyses:
+            return None
+        if len({frozenset(analysis.removed) for analysis in analyses}) > 1:
+            raise refuse(
+                "flow-basis-ambiguous",
+                reading.measurement.subject,
+                "found a flow as analysed beside {count} analyses from which not the same was"
+                " removed, so that it is not known what it counts; state the flow of the whole"
+                " stream, or part the stream into what was metered and what was removed, the"
+                " latter as a stream of its own",
+                count=Amount(float(len(analyses))),
+            )
+        return analyses[0]
+
+    def by_design(
+        self,
+        g: int,
+        reading: FlowReading,
+        form: FloatArray,
+        molar_volume: float | FloatArray | None,
+        analysis: Analysis | None,
+    ) -> None:
+        """Enter what a differential-pressure meter shows; see :class:`DesignDensity`.
+
+        M is that of all that passes the meter: of the whole stream, or, where
+        the flow is counted as analysed, of what is left after the removals,
+        since a meter measures whatever passes it.
+        """
+        design, kind = reading.design, reading.kind
+        assert design is not None
+        if kind == "volume" and molar_volume is None:
+            raise refuse(
+                "meter-conditions-missing",
+                reading.measurement.subject,
+                "found a volumetric flow of a gas at a meter; it needs the temperature and"
+                " pressure of the meter",
+            )
+        moles = self.own[g]
+        if reading.substance is not None:
+            moles = self.component({reading.substance: 1.0}, self.ones)
+        mass = moles * self.masses
+        if analysis is not None:
+            moles, mass = (self.sampled(g, of, analysis) for of in (moles, mass))
+        of_series = self.series.get(reading.measurement.subject)
+        ratio: float | FloatArray = design.ratio
+        if of_series is not None and of_series.density_ratio is not None:
+            ratio = of_series.density_ratio
+        meter = DifferentialPressure(reading, ratio, self.flows(g, moles), self.flows(g, mass))
+        self.by_pressure.append(meter)
+        constant = ratio ** design.of_ratio(kind)
+        if kind == "volume" and molar_volume is not None:
+            constant = constant * molar_volume
+        power, powers = design.of_molar_mass(kind), []
+        if reading.substance is not None:
+            molar_mass = float(self.masses[reading.substance])
+            constant = constant * (molar_mass / design.molar_mass) ** power
+        else:
+            # By the design's molar mass, so that a first guess may take the quotient as 1.
+            number = len(self.measurements)
+            above = self.base(("meter", number, "mass"), meter.mass / design.molar_mass)
+            below = self.base(("meter", number, "amount"), meter.amount)
+            self.corrections.update((above, below))
+            powers = [(above, power), (below, -power)]
+        self.add(g, reading.measurement, form, powers, constant=constant, flow=True)
 
     def density(self, g: int, reading: Measurement) -> None:
         """Enter the density of a liquid: mass over volume."""
@@ -342,7 +450,8 @@ class ReadingWriter:
         constant, powers, cleared = self.divisor(g, analysis)
         share = analysis.basis in FRACTIONS and not analysis.normalised
         first = len(self.measurements)
-        self.analyses[g] = slice(first, first + len(analysis.components))
+        which = self.which(g, analysis)
+        self.places[g, which] = slice(first, first + len(analysis.components))
         for component in analysis.components:
             self.add(
                 g,
@@ -358,7 +467,7 @@ class ReadingWriter:
         """Return the form that a value of an analysis counts."""
         weights = self.component(shares, self.weights(analysis))
         if any(removal.substance in shares for removal in analysis.removed):
-            weights = self.sampled(g, weights)
+            weights = self.sampled(g, weights, analysis)
         return self.flows(g, weights)
 
     def weights(self, analysis: Analysis) -> FloatArray:
@@ -370,12 +479,13 @@ class ReadingWriter:
         if analysis.normalised:
             # The total of the peaks stands for whatever they were scaled by.
             peaks = [self.counted(g, analysis, c.weights) for c in analysis.components]
-            cleared = self.base((g, "peaks"), np.sum(peaks, axis=0))
-            return 1.0, [(cleared, -1.0), (self.further_base(g, SCALE), 1.0)], cleared
+            which = self.which(g, analysis)
+            cleared = self.base((g, "peaks", which), np.sum(peaks, axis=0))
+            return 1.0, [(cleared, -1.0), (self.further_base(g, SCALE + which), 1.0)], cleared
         if analysis.basis not in FRACTIONS:
             return self.per_volume(g, analysis)
         total = "mass" if analysis.basis == "mass" else "amount"
-        cleared = self.sample_total(g, self.weights(analysis), total)
+        cleared = self.sample_total(g, self.weights(analysis), total, analysis)
         return 1.0, [(cleared, -1.0)], cleared
 
     def component(self, shares: Mapping[int, float], weights: FloatArray) -> FloatArray:
@@ -397,7 +507,7 @@ class ReadingWriter:
                 " concentrations of the whole liquid",
             )
         if self.has_conditions(g):
-            sample = self.sample_total(g, self.ones, "amount")
+            sample = self.sample_total(g, self.ones, "amount", analysis)
             powers = [
                 (sample, -1.0),
                 (self.further_base(g, PRESSURE), 1.0),
@@ -407,7 +517,7 @@ class ReadingWriter:
         volume = self.further_base(g, VOLUME)
         powers = [(volume, -1.0)]
         if analysis.removed:
-            sample = self.sample_total(g, self.ones, "amount")
+            sample = self.sample_total(g, self.ones, "amount", analysis)
             powers += [(sample, -1.0), (self.stream_total(g), 1.0)]
         return 1.0, powers, volume
 
@@ -519,7 +629,9 @@ def _per_mole(writer: ReadingWriter, forms: Forms) -> FloatArray:
     some = np.count_nonzero(counted, axis=1)
     mean = np.sort(np.abs(counted), axis=1).sum(axis=1) / np.maximum(some, 1)
     typical = np.array([1 / MOLAR_DENSITY[writer.streams[g].phase] for g in writer.stream_of])
-    plain = (some > 0) & ~np.any(forms.exponents != 0, axis=1)
+    counting = forms.exponents != 0
+    counting[:, sorted(writer.corrections)] = False
+    plain = (some > 0) & ~np.any(counting, axis=1)
     return np.where(plain, mean * forms.constants, typical)
 
 

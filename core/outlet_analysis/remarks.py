@@ -12,6 +12,7 @@ from core.outlet_analysis.account import listed
 from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, WHOLE, percent, sum_u
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.readings import BELOW
+from core.streams.known import meter_note
 
 ILL_CONDITIONED = 1e8
 """Inflation of a variance from which on the answer is called ill-conditioned."""
@@ -107,6 +108,7 @@ def remarks(found: Estimate) -> Iterator[Note]:
         yield from _contradicted(found, counted)
     yield from _sum_notes(found, counted)
     yield from _removal_notes(found, counted)
+    yield from _meters(found)
 
 
 def _contradicted(found: Estimate, counted: Counted) -> Iterator[Note]:
@@ -136,15 +138,18 @@ def _absent(found: Estimate, counted: Counted) -> Iterator[Note]:
         unknown = account.unknowns[column]
         if unknown.stream >= len(account.problem.feed):
             continue
-        analysis = account.streams[unknown.stream].analysis
-        assert analysis is not None
+        subject = next(
+            analysis.subject
+            for analysis in account.streams[unknown.stream].analyses
+            if any(removal.substance == unknown.index for removal in analysis.removed)
+        )
         words, facts = counted(found.absent[:, column])
         yield Note(
             "removed-taken-as-absent",
             "{substance} is removed from the sample before it is analysed, and no reading tells"
             " how much of it is fed: taken as none. If there is some, state its flow as a feed"
             " stream of its own" + words,
-            subject=analysis.subject,
+            subject=subject,
             facts={"substance": account.problem.reactions.names[unknown.index], **facts},
         )
 
@@ -180,9 +185,8 @@ def _placement(found: Estimate) -> Iterator[Note]:
 def _by_difference(found: Estimate, g: int) -> list[str]:
     """Substances, with the share of all that leaves, in stream ``g`` and in no value of it."""
     account = found.account
-    analysis = account.streams[g].analysis
     read: set[int] = set()
-    if analysis is not None:
+    for analysis in account.streams[g].analyses:
         read.update(*(component.weights for component in analysis.components))
     flows, left = found.stream_flows(g), found.outlet_flows
     elsewhere = (found.stream_forms(g) != account.outlet_map).any(axis=1)
@@ -302,7 +306,9 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
             continue
         weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)
-        seen = account.writer.sampled(of.stream, weights * account.writer.own[of.stream])
+        seen = account.writer.sampled(
+            of.stream, weights * account.writer.own[of.stream], of.analysis
+        )
         whole = np.nan_to_num(flows) @ seen
         marks &= whole > 0
         share = flows[:, unread] * weights[unread] / np.where(marks, whole, 1.0)[:, None]
@@ -327,14 +333,32 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
             )
 
 
+def _meters(found: Estimate) -> Iterator[Note]:
+    """What the flows of differential-pressure meters are corrected by."""
+    account = found.account
+    there = np.atleast_1d(np.isfinite(found.chi_square))
+    rows = slice(found.first, found.first + len(there))
+    for meter in account.writer.by_pressure:
+        design = meter.reading.design
+        amount, mass = (
+            np.atleast_1d(found.z @ (form @ account.stream_map))
+            for form in (meter.amount, meter.mass)
+        )
+        passing = there & (amount > 0) & (mass > 0)
+        if design is None or not passing.any():
+            continue
+        ratio = meter.ratio[rows][passing] if isinstance(meter.ratio, np.ndarray) else meter.ratio
+        yield meter_note(meter.reading, design, ratio, mass[passing] / amount[passing])
+
+
 def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     """Removals whose residual is more than the stream holds of the substance."""
     account = found.account
     names = account.problem.reactions.names
     count = len(names)
-    for g, stream in enumerate(account.streams):
-        analysis = stream.analysis
-        if analysis is None or not any(removal.residual for removal in analysis.removed):
+    of_streams = [(g, a) for g, stream in enumerate(account.streams) for a in stream.analyses]
+    for g, analysis in of_streams:
+        if not any(removal.residual for removal in analysis.removed):
             continue
         left = 1 - sum(removal.residual for removal in analysis.removed)
         gone = [removal.substance for removal in analysis.removed]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 from itertools import compress
@@ -11,9 +11,9 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
-from core.errors import Amount, Note, Subject, refuse
+from core.errors import Amount, Fact, Note, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Measurement, MeteredStream
+from core.streams.metered import DesignDensity, FlowReading, Measurement, MeteredStream
 from core.streams.stream import Stream, StreamPhase, phase_sum
 
 CONCENTRATIONS = ("concentration", "mass-concentration")
@@ -40,9 +40,11 @@ class Conditions:
 
 def is_direct(stream: MeteredStream) -> bool:
     """Whether the stream's flows are read substance by substance, with nothing to solve for."""
-    if stream.analysis is None:
+    if not stream.analyses:
         return all(f.substance is not None or f.kind == "volume" for f in stream.flows)
-    return stream.analysis.basis in CONCENTRATIONS and any(
+    if len(stream.analyses) > 1:
+        return False
+    return stream.analyses[0].basis in CONCENTRATIONS and any(
         f.substance is None and f.kind == "volume" and f.molar_volume is None for f in stream.flows
     )
 
@@ -55,17 +57,79 @@ def direct_flows(stream: MeteredStream, molar_masses: FloatArray) -> FloatArray:
         if reading.substance is None:
             continue
         value = reading.measurement.value
-        per_mole = float(molar_masses[reading.substance]) if reading.kind == "mass" else 1.0
+        molar_mass = float(molar_masses[reading.substance])
+        per_mole = molar_mass if reading.kind == "mass" else 1.0
+        if reading.design is not None:
+            per_mole *= reading.design.shown_over_true(reading.kind, molar_mass)
         flows[reading.substance] += value / per_mole
-    if stream.analysis is not None:
+    for analysis in stream.analyses:
         volume = stated_volume(stream)
         assert volume is not None
-        by_mass = stream.analysis.basis == "mass-concentration"
-        for component in stream.analysis.components:
+        by_mass = analysis.basis == "mass-concentration"
+        for component in analysis.components:
             (i,) = component.weights
             per_mole = float(molar_masses[i]) if by_mass else 1.0
             flows[i] += component.measurement.value * volume / per_mole
     return np.array(flows)
+
+
+FAR_FROM_DESIGN = 2.0
+"""Density over that of a meter's design, or its inverse, from which on the correction is doubted:
+expansion factor and discharge coefficient are those of the design (common practice)."""
+
+
+def meter_note(
+    reading: FlowReading,
+    design: DesignDensity,
+    ratio: float | FloatArray,
+    molar_masses: FloatArray,
+) -> Note:
+    """Return the remark on a differential-pressure meter: what its flow was corrected by.
+
+    ``ratio`` is that of its design, one number or (N,), and ``molar_masses``
+    (N,), kg/mol, are those of what passes.
+    """
+    over = molar_masses / design.molar_mass
+    density = ratio * over
+    factors = ratio ** -design.of_ratio(reading.kind) * over ** -design.of_molar_mass(reading.kind)
+    facts: dict[str, Fact] = {}
+    words = []
+    for name, values, dimension in (
+        ("factor", factors, "dimensionless"),
+        ("molar_mass", molar_masses, "mass_per_amount"),
+    ):
+        least, most = float(values.min()), float(values.max())
+        facts[name] = Amount(least, dimension)
+        words.append(f"{{{name}}}")
+        if most != least:
+            facts[f"{name}_most"] = Amount(most, dimension)
+            words[-1] += f" to {{{name}_most}}"
+    far = float(np.abs(np.log(density)).max()) > np.log(FAR_FROM_DESIGN)
+    return Note(
+        "meter-far-from-design" if far else "meter-corrected",
+        f"the flow shown is corrected by {words[0]}, from the design density of the meter to that"
+        f" of a gas of {words[1]}"
+        + (
+            "; so far from the design its discharge coefficient and expansion factor need not be"
+            " those it was laid out with: check the conditions and the units stated, and let the"
+            " meter be laid out anew"
+            if far
+            else ""
+        ),
+        "warning" if far else "info",
+        reading.measurement.subject,
+        facts,
+    )
+
+
+def meter_notes(streams: Sequence[MeteredStream], molar_masses: FloatArray) -> Iterator[Note]:
+    """Yield the remarks on the meters of streams that are each :func:`is_direct`."""
+    for stream in streams:
+        for reading in stream.flows:
+            if reading.design is None or reading.substance is None:
+                continue
+            own = molar_masses[[reading.substance]]
+            yield meter_note(reading, reading.design, reading.design.ratio, own)
 
 
 def stated_volume(stream: MeteredStream) -> float | None:
@@ -186,7 +250,7 @@ def join_streams(
 
 def _solvent_unknown(stream: MeteredStream, own: FloatArray, molar_masses: FloatArray) -> bool:
     """Whether a liquid given by concentrations may hold more than they name."""
-    if stream.analysis is None or stream.analysis.basis not in CONCENTRATIONS:
+    if not stream.analyses or any(a.basis not in CONCENTRATIONS for a in stream.analyses):
         return False
     volume = stated_volume(stream)
     if volume is None or stream.density is None:

@@ -90,14 +90,68 @@ class Analysis:
     normalised: bool = False
 
 
+@dataclass(frozen=True)
+class DesignDensity:
+    """The gas that a differential-pressure meter was laid out for, beside the one at the meter.
+
+    Such a meter has q_m = K sqrt(dp rho), K its own constant (ISO 5167-1, from
+    memory: mass flow proportional to the square root of differential pressure
+    times density upstream; the expansion factor is taken as that of the
+    design). Its scale is laid out for a density rho_d, so that it shows
+    K sqrt(dp rho_d) of mass, K sqrt(dp rho_d)/M_d of amount (and of normal
+    volume), or K sqrt(dp/rho_d) of volume at the meter. Division gives what is
+    shown over what is true:
+
+        mass            (rho_d/rho)^(1/2)
+        amount          (rho_d/rho)^(1/2) M/M_d
+        actual volume   (rho/rho_d)^(1/2)
+
+    and with rho = P M/(Z R T), r = (P/P_d)(T_d/T)(Z_d/Z):
+
+        mass            r^(-1/2) (M/M_d)^(-1/2)
+        amount          r^(-1/2) (M/M_d)^(1/2)
+        actual volume   r^(1/2)  (M/M_d)^(1/2)
+
+    of which M is part of the account. A transmitter that is compensated for a
+    temperature or a pressure shows as if its design had that one.
+
+    Attributes
+    ----------
+    molar_mass : float
+        M_d, kg/mol.
+    ratio : float
+        r, -, without what the transmitter is compensated for.
+    """
+
+    molar_mass: float
+    ratio: float = 1.0
+
+    @staticmethod
+    def of_ratio(kind: FlowKind) -> float:
+        """Return the exponent of r in what is shown over what is true."""
+        return 0.5 if kind == "volume" else -0.5
+
+    @staticmethod
+    def of_molar_mass(kind: FlowKind) -> float:
+        """Return the exponent of M/M_d in what is shown over what is true."""
+        return -0.5 if kind == "mass" else 0.5
+
+    def shown_over_true(self, kind: FlowKind, molar_mass: float) -> float:
+        """Return what is shown over what is true of a gas of known molar mass, kg/mol."""
+        mass = molar_mass / self.molar_mass
+        return float(self.ratio ** self.of_ratio(kind) * mass ** self.of_molar_mass(kind))
+
+
 @record()
 class FlowReading:
     """A flow meter's reading, of one substance or of the whole stream.
 
     ``substance`` None is the total; ``as_analysed`` counts only what is left
-    after the removals of the stream's own analysis. ``kind`` ``volume`` of a
-    gas has its ``molar_volume`` (m3/mol) at the meter's own conditions; without
-    it the volume is that at the stream's own.
+    after the removals of the stream's own analyses, and then that is what
+    passes the meter. ``kind`` ``volume`` of a gas has its ``molar_volume``
+    (m3/mol) at the meter's own conditions; without it the volume is that at the
+    stream's own. ``design`` is that of a differential-pressure meter of a gas
+    which shows a flow as if the gas had its design density.
     """
 
     kind: FlowKind
@@ -105,6 +159,7 @@ class FlowReading:
     substance: int | None = None
     as_analysed: bool = False
     molar_volume: float | None = None
+    design: DesignDensity | None = None
 
 
 @dataclass(frozen=True)
@@ -117,11 +172,13 @@ class MeteredStream:
     present : frozenset of int or None
         Substances that may be in it, exactly these; always stated of a feed.
         None, of an outlet: whatever its phase can carry, which is all but the
-        substances stated to be of another phase that its own analysis does not
-        read. A single outlet holds all that the feed and the reactions bring,
+        substances stated to be of another phase that no analysis of its own
+        reads. A single outlet holds all that the feed and the reactions bring,
         whatever is said here.
     flows : tuple of FlowReading
-    analysis : Analysis or None
+    analyses : tuple of Analysis
+        Repeated ones, or of several analysers: each is a sample of the stream
+        with removals of its own.
     temperature, pressure : Measurement or None
         K, Pa, of the stream: they give a gas its concentrations.
     compressibility : float
@@ -134,7 +191,7 @@ class MeteredStream:
     present: frozenset[int] | None
     subject: Subject
     flows: tuple[FlowReading, ...] = ()
-    analysis: Analysis | None = None
+    analyses: tuple[Analysis, ...] = ()
     temperature: Measurement | None = None
     pressure: Measurement | None = None
     compressibility: float = 1.0

@@ -207,6 +207,29 @@ case(
     ),
     "/feed/flow",
 )
+DESIGNED = {
+    "phase": "gas",
+    "flow": "1000 Nm3/h",
+    "analysis": [
+        {"basis": "mole", "removed": ["H2O"], "values": {"CO": "40 %"}, "balance": "N2"},
+        {"basis": "mole", "values": {"H2O": "60 %"}},
+    ],
+    "meter": {
+        "temperature": "40 degC",
+        "pressure": "20 bar",
+        "design": {"temperature": "40 degC", "pressure": "22 bar", "molar_mass": "18 g/mol"},
+    },
+}
+case(
+    "meter-design-of-liquid",
+    table(feed=changed(DESIGNED, phase="liquid", flow="1 t/h")),
+    "/feed/meter",
+)
+case(
+    "flow-basis-ambiguous",
+    table(feed={**DESIGNED, "flow_basis": "as-analysed"}),
+    "/feed/flow",
+)
 case(
     "volume-contradicts-conditions",
     table(

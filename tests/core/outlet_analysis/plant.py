@@ -11,6 +11,7 @@ from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import (
     Analysis,
     Component,
+    DesignDensity,
     FlowReading,
     Measurement,
     MeteredStream,
@@ -83,7 +84,8 @@ def stream_of(
     kind: Any = "amount",
     as_analysed: bool = False,
     molar_volume: float | None = None,
-    analysis: Analysis | None = None,
+    analysis: Analysis | Sequence[Analysis] | None = None,
+    design: DesignDensity | None = None,
     present: Sequence[str] | None = None,
     temperature: Reading | None = None,
     pressure: Reading | None = None,
@@ -95,6 +97,9 @@ def stream_of(
         FlowReading(kind, reading(value, side, "flows", name), reactions.index(name))
         for name, value in (flows or {}).items()
     ]
+    analyses: tuple[Analysis, ...] = ()
+    if analysis is not None:
+        analyses = (analysis,) if isinstance(analysis, Analysis) else tuple(analysis)
     if total is not None:
         found.append(
             FlowReading(
@@ -102,15 +107,16 @@ def stream_of(
                 reading(total, side, "flow"),
                 as_analysed=as_analysed,
                 molar_volume=molar_volume,
+                design=design,
             )
         )
     if volume is not None:
         found.append(FlowReading("volume", reading(volume, side, "volumetric_flow")))
     if present is None:
         here = {reactions.index(name) for name in flows or {}}
-        if analysis is not None:
-            here.update(*(component.weights for component in analysis.components))
-            here.update({analysis.balance} - {None})
+        for one in analyses:
+            here.update(*(component.weights for component in one.components))
+            here.update({one.balance} - {None})
         present_indices = frozenset(i for i in here if i is not None)
     else:
         present_indices = frozenset(reactions.index(name) for name in present)
@@ -119,7 +125,7 @@ def stream_of(
         present=present_indices,
         subject=(side,),
         flows=tuple(found),
-        analysis=analysis,
+        analyses=analyses,
         temperature=None if temperature is None else reading(temperature, side, "temperature"),
         pressure=None if pressure is None else reading(pressure, side, "pressure"),
         density=None if density is None else reading(density, side, "density"),

@@ -6,7 +6,7 @@ over flows, for holding the forms of the core against.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 import numpy as np
@@ -17,6 +17,7 @@ from core.reactions.reaction_set import Reaction, ReactionSet
 from core.streams.metered import (
     Analysis,
     Component,
+    DesignDensity,
     FlowReading,
     Measurement,
     MeteredStream,
@@ -61,7 +62,8 @@ class State:
     extents: np.ndarray
     volumes: list[float]
     """m3/s of each feed where they are liquids; the outlet has their sum."""
-    scales: list[float]
+    scales: list[list[float]]
+    """Of each analysis of each stream."""
     temperatures: list[float]
     pressures: list[float]
 
@@ -74,23 +76,15 @@ def predicted(problem: AccountProblem, state: State) -> dict[tuple[str | int, ..
     masses = problem.reactions.molar_masses
     found: dict[tuple[str | int, ...], float] = {}
     for g, (stream, moles) in enumerate(zip((*problem.feed, *problem.outlet), flows, strict=True)):
-        volume, scale = volumes[g], state.scales[g]
+        volume = volumes[g]
         per_mole = stream.compressibility * GAS_CONSTANT * state.temperatures[g]
         per_mole /= state.pressures[g]
         if stream.temperature is not None and stream.pressure is not None:
             found[stream.temperature.subject] = state.temperatures[g]
             found[stream.pressure.subject] = state.pressures[g]
-        sample = moles.copy()
-        analysis = stream.analysis
-        if analysis is not None and analysis.removed:
-            for removal in analysis.removed:
-                sample[removal.substance] = 0.0
-            rest = sample.sum()
-            residual = sum(r.residual for r in analysis.removed)
-            for removal in analysis.removed:
-                sample[removal.substance] = removal.residual * rest / (1 - residual)
+        samples = [sampled(moles, analysis) for analysis in stream.analyses]
         for meter in stream.flows:
-            seen = sample if meter.as_analysed else moles
+            seen = samples[0] if meter.as_analysed else moles
             if meter.substance is not None:
                 seen = np.where(np.arange(len(seen)) == meter.substance, seen, 0.0)
             if meter.kind == "mass":
@@ -103,32 +97,64 @@ def predicted(problem: AccountProblem, state: State) -> dict[tuple[str | int, ..
                 value = float(seen.sum()) * meter.molar_volume
             else:
                 value = float(seen.sum()) * per_mole
+            if meter.design is not None:
+                # ISO 5167-1, from memory: the pressure difference goes with q_m^2/rho, and is
+                # read as if the density were that of the design. Ratios of densities only.
+                over_design = meter.design.ratio * (seen @ masses / seen.sum())
+                over_design /= meter.design.molar_mass
+                true_mass = float(seen @ masses)
+                shown_mass = true_mass / over_design**0.5
+                value *= {
+                    "mass": shown_mass / true_mass,
+                    # At design composition an amount, at design density a volume.
+                    "amount": shown_mass
+                    / meter.design.molar_mass
+                    / (true_mass / (seen @ masses / seen.sum())),
+                    "volume": shown_mass * over_design / true_mass,
+                }[meter.kind]
             found[meter.measurement.subject] = value
         if stream.density is not None:
             found[stream.density.subject] = float(moles @ masses) / volume
-        if analysis is None:
-            continue
-        by_mass = analysis.basis in ("mass", "mass-concentration")
-        counted = sample * masses if by_mass else sample
-        peaks = [
-            sum(w * counted[i] for i, w in component.weights.items())
-            for component in analysis.components
-        ]
-        for component, peak in zip(analysis.components, peaks, strict=True):
-            if analysis.normalised:
-                value = scale * peak / sum(peaks)
-            elif analysis.basis in ("mole", "mass", "volume"):
-                value = peak / counted.sum()
-            elif stream.phase == "liquid":
-                value = peak / volume
-            else:
-                value = peak / (float(sample.sum()) * per_mole)
-            found[component.measurement.subject] = float(value)
+        for k, (analysis, sample) in enumerate(zip(stream.analyses, samples, strict=True)):
+            by_mass = analysis.basis in ("mass", "mass-concentration")
+            counted = sample * masses if by_mass else sample
+            peaks = [
+                sum(w * counted[i] for i, w in component.weights.items())
+                for component in analysis.components
+            ]
+            for component, peak in zip(analysis.components, peaks, strict=True):
+                if analysis.normalised:
+                    value = state.scales[g][k] * peak / sum(peaks)
+                elif analysis.basis in ("mole", "mass", "volume"):
+                    value = peak / counted.sum()
+                elif stream.phase == "liquid":
+                    value = peak / volume
+                else:
+                    value = peak / (float(sample.sum()) * per_mole)
+                found[component.measurement.subject] = float(value)
     return found
 
 
-def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
-    """A random problem with one outlet, its readings blank, and its true state."""
+def sampled(moles: np.ndarray, analysis: Analysis) -> np.ndarray:
+    """What of a stream the analyser saw."""
+    sample = moles.copy()
+    for removal in analysis.removed:
+        sample[removal.substance] = 0.0
+    rest = sample.sum()
+    residual = sum(r.residual for r in analysis.removed)
+    for removal in analysis.removed:
+        sample[removal.substance] = removal.residual * rest / (1 - residual)
+    return sample
+
+
+def random_problem(
+    rng: np.random.Generator, *, several: bool = False
+) -> tuple[AccountProblem, State]:
+    """A random problem with one outlet, its readings blank, and its true state.
+
+    ``several`` has some streams analysed more than once and some gases metered
+    by differential pressure.
+    """
     substances = int(rng.integers(4, 9))
     reactions = random_reactions(rng, substances, int(rng.integers(1, 4)))
     liquid = rng.random() < 0.3
@@ -144,21 +170,23 @@ def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
         flows = np.zeros(substances)
         flows[present] = rng.uniform(0.2, 10.0, len(present))
         true_feed.append(flows)
-        streams.append(_metered(rng, side, liquid, present, blank))
+        streams.append(_metered(rng, side, liquid, present, blank, several=several))
     room = sum(true_feed) + 0.0
     extents = np.zeros(len(reactions.nu))
     for j, row in enumerate(reactions.nu):
         left = room + extents @ reactions.nu
         limits = [left[i] / -row[i] for i in np.flatnonzero(row < 0)]
         extents[j] = rng.uniform(0.1, 0.6) * max(0.0, min(limits))
-    outlet = _metered(rng, "outlet", liquid, np.arange(substances), blank, outlet=True)
+    outlet = _metered(
+        rng, "outlet", liquid, np.arange(substances), blank, outlet=True, several=several
+    )
     problem = AccountProblem(reactions, 0, tuple(streams), (outlet,))
     count = feeds + 1
     state = State(
         true_feed,
         extents,
         list(rng.uniform(0.5, 2.0, feeds) * 1e-3),
-        list(rng.uniform(0.9, 1.1, count)),
+        [[scale, 1.02 * scale, 0.97 * scale] for scale in rng.uniform(0.9, 1.1, count)],
         list(rng.uniform(300.0, 600.0, count)),
         list(rng.uniform(1e5, 2e6, count)),
     )
@@ -172,28 +200,23 @@ def _metered(
     present: np.ndarray,
     blank: Measurement,
     outlet: bool = False,
+    several: bool = False,
 ) -> MeteredStream:
     def named(*subject: str | int) -> Measurement:
         return Measurement(blank.value, blank.u, (side, *subject))
 
     every = [int(i) for i in present]
-    basis = str(rng.choice(["mole", "mass", "concentration", "mass-concentration"]))
-    conc = basis.endswith("concentration")
-    removed = ()
-    if not (liquid and conc) and rng.random() < 0.5 and len(every) > 3:
-        removed = (Removal(every[-1], float(rng.choice([0.0, 0.02]))),)
-    kept = [i for i in every if i not in {r.substance for r in removed}]
-    components = [Component({i: 1.0}, named("analysis", i)) for i in kept]
-    if len(components) > 3 and rng.random() < 0.3:
-        first, second = components.pop(), components.pop()
-        weights = {**first.weights, **dict.fromkeys(second.weights, 0.8)}
-        components.append(Component(weights, named("analysis", "lump")))
-    normalised = bool(rng.random() < 0.2)
+    analyses = [_analysis(rng, side, liquid, every, blank, 0)]
+    if several:
+        further = range(1, int(rng.integers(1, 4)))
+        analyses.extend(_analysis(rng, side, liquid, every, blank, k) for k in further)
     kind = str(rng.choice(["amount", "mass", "volume"]))
     molar_volume = 0.0224 if rng.random() < 0.5 else None
-    flows = [
-        FlowReading(kind, named("flow"), None, bool(rng.random() < 0.5), molar_volume)  # type: ignore[arg-type]
-    ]
+    as_analysed = bool(rng.random() < 0.5) and len({a.removed for a in analyses}) == 1
+    flows = [FlowReading(kind, named("flow"), None, as_analysed, molar_volume)]  # type: ignore[arg-type]
+    if several and not liquid and rng.random() < 0.7:
+        design = DesignDensity(float(rng.uniform(0.01, 0.1)), float(rng.uniform(0.5, 2.0)))
+        flows = [replace(flows[0], molar_volume=0.0224, design=design)]
     if liquid:
         flows = [FlowReading("mass", named("flow")), FlowReading("volume", named("volume"))]
     if outlet and rng.random() < 0.6:
@@ -206,15 +229,40 @@ def _metered(
         present=frozenset(every),
         subject=(side,),
         flows=tuple(flows),
-        analysis=Analysis(
-            basis=basis,  # type: ignore[arg-type]
-            components=tuple(components),
-            subject=(side, "analysis"),
-            removed=removed,
-            normalised=normalised,
-        ),
+        analyses=tuple(analyses),
         temperature=None if liquid else named("temperature"),
         pressure=None if liquid else named("pressure"),
         density=None,
         compressibility=0.95,
+    )
+
+
+def _analysis(
+    rng: np.random.Generator,
+    side: str,
+    liquid: bool,
+    every: list[int],
+    blank: Measurement,
+    k: int,
+) -> Analysis:
+    def named(*subject: str | int) -> Measurement:
+        return Measurement(blank.value, blank.u, (side, *subject, k))
+
+    basis = str(rng.choice(["mole", "mass", "concentration", "mass-concentration"]))
+    conc = basis.endswith("concentration")
+    removed = ()
+    if not (liquid and conc) and rng.random() < 0.5 and len(every) > 3:
+        removed = (Removal(every[-1], float(rng.choice([0.0, 0.02]))),)
+    kept = [i for i in every if i not in {r.substance for r in removed}]
+    components = [Component({i: 1.0}, named("analysis", i)) for i in kept]
+    if len(components) > 3 and rng.random() < 0.3:
+        first, second = components.pop(), components.pop()
+        weights = {**first.weights, **dict.fromkeys(second.weights, 0.8)}
+        components.append(Component(weights, named("analysis", "lump")))
+    return Analysis(
+        basis=basis,  # type: ignore[arg-type]
+        components=tuple(components),
+        subject=(side, "analysis", k),
+        removed=removed,
+        normalised=bool(rng.random() < 0.2),
     )

@@ -111,8 +111,8 @@ def test_u_against_a_seeded_monte_carlo() -> None:
     series = {}
     for stream in (*problem.feed, *problem.outlet):
         readings = [f.measurement for f in stream.flows]
-        if stream.analysis is not None:
-            readings += [c.measurement for c in stream.analysis.components]
+        for analysis in stream.analyses:
+            readings += [c.measurement for c in analysis.components]
         for reading in readings:
             value = reading.value + reading.u * rng.standard_normal(draws)
             series[reading.subject] = Series(value, np.full(draws, reading.u))

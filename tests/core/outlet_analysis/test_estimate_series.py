@@ -29,8 +29,8 @@ def measurements(problem: AccountProblem) -> list[Measurement]:
     found = []
     for stream in (*problem.feed, *problem.outlet):
         found += [reading.measurement for reading in stream.flows]
-        if stream.analysis is not None:
-            found += [component.measurement for component in stream.analysis.components]
+        for analysis in stream.analyses:
+            found += [component.measurement for component in analysis.components]
     return found
 
 
@@ -56,13 +56,13 @@ def one(problem: AccountProblem, k: int) -> AccountProblem:
 
     def stream(of: Any) -> Any:
         flows = tuple(replace(f, measurement=single(f.measurement)) for f in of.flows)
-        analysis = of.analysis
-        if analysis is not None:
+        analyses = []
+        for analysis in of.analyses:
             components = tuple(
                 replace(c, measurement=single(c.measurement)) for c in analysis.components
             )
-            analysis = replace(analysis, components=components)
-        return replace(of, flows=flows, analysis=analysis)
+            analyses.append(replace(analysis, components=components))
+        return replace(of, flows=flows, analyses=tuple(analyses))
 
     return replace(
         problem,

@@ -218,7 +218,7 @@ def test_an_open_split_between_streams_is_no_number() -> None:
         "gas",
         total=(578.8 * KMOL_H, 1.0),
         as_analysed=True,
-        analysis=problem.outlet[0].analysis,
+        analysis=problem.outlet[0].analyses,
     )
     silent = stream_of(SHIFT, "vent", present=["H2O"])
     outlet = (anything(total), problem.outlet[1], silent)

@@ -34,7 +34,7 @@ def liquid(concentrations, volume, density=None):
         frozenset(range(4)),
         ("feed",),
         flows=(FlowReading("volume", reading(volume)),),
-        analysis=Analysis("concentration", components, ("feed", "concentrations")),
+        analyses=(Analysis("concentration", components, ("feed", "concentrations")),),
         density=None if density is None else reading(density),
     )
 
@@ -102,7 +102,7 @@ def test_what_needs_an_estimation_is_not_direct():
         frozenset(range(4)),
         ("feed",),
         flows=(FlowReading("amount", reading(10.0)),),
-        analysis=Analysis("mole", (Component({CO: 1.0}, reading(0.5)),), ("feed", "analysis")),
+        analyses=(Analysis("mole", (Component({CO: 1.0}, reading(0.5)),), ("feed", "analysis")),),
     )
     assert not is_direct(analysed)
     assert is_direct(flows(CO=("amount", 1.0)))
