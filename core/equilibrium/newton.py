@@ -40,6 +40,8 @@ _SHORTER = 0.35  # of a step, where it was too long
 _TO_NOTHING = np.log(1e-6)  # of what it was before
 _ROUNDING = np.log(1e-13)  # of all matter
 _SMALLEST_SHARE = 1e-12
+_FLAT = 100.0  # how much longer than the affinities a step may be
+_CLOSE = 1e-3  # |ln(Q/K)| below which Newton's method needs no guidance
 _DEEP = -600.0  # ln of an amount near the least that is a number of full precision
 
 
@@ -333,12 +335,13 @@ def _newton_step(
     matrix += identity
     change = solve_stack(matrix, -affinity[:, :, None])[:, :, 0]
     # Where pure phases alone make up the whole mixture nothing but its amount is left to
-    # change, along which the Gibbs energy is a straight line: down it.
+    # change, along which the Gibbs energy is a straight line: some way down it.
     weight = np.exp(ln_minor - ln_minor.max(axis=1, keepdims=True))
+    far = _FLAT * (1.0 + np.abs(affinity).max(axis=1))
     downhill = (affinity * weight * change).sum(axis=1) < 0
-    flat = ~(downhill & np.isfinite(change).all(axis=1))
+    flat = ~(downhill & (np.abs(change).max(axis=1) < far))
     if flat.any():
-        damped = matrix[flat] + 1e-6 * identity
+        damped = matrix[flat] + identity / _FLAT
         change[flat] = solve_stack(damped, -affinity[flat][:, :, None])[:, :, 0]
     return change
 
@@ -385,6 +388,7 @@ def _advance(
     # Where a mixture is all there is the slope says enough.
     has_pure = not system.in_mixture.all()
     before = _gibbs_energy(system, basis, ln_n) if has_pure else share
+    close = np.abs(affinity).max(axis=1) < _CLOSE
     below: BoolArray = np.zeros(ln_n.shape, dtype=bool)  # zero, had a little more been taken
     while len(todo):
         b = basis.samples(todo) if len(todo) < count else basis
@@ -399,7 +403,7 @@ def _advance(
         good &= ~(onward > 0.5 * np.abs(slope[todo]))
         if has_pure:
             energy = _gibbs_energy(part, b, trial)
-            good &= ~(energy > before[todo] + 1e-13 * np.abs(before[todo]))
+            good &= close[todo] | ~(energy > before[todo] + 1e-13 * np.abs(before[todo]) + 1e-12)
         below[todo[~good]] = ~np.isfinite(trial[~good])
         stuck = ~good & (share[todo] < _SMALLEST_SHARE)
         trial[stuck] = ln_n[todo[stuck]]
@@ -415,7 +419,7 @@ def _advance(
         found, first = _to_its_end(basis.samples(near), ln_n, ln_minor, share, change, new, near)
         # On the way there, too, the Gibbs energy must fall: else it is not to be used up.
         energy = _gibbs_energy(system.samples(near), basis.samples(near), found)
-        ended = (first >= 0) & ~system.in_mixture[first] & (energy <= before[near])
+        ended = (first >= 0) & ~system.in_mixture[first] & (energy <= before[near] + 1e-12)
         taken = near[ended]
         new[taken] = found[ended]
         spent[taken] = first[ended]
