@@ -32,12 +32,17 @@ IntArray = NDArray[np.intp]
 _EPS = float(np.finfo(float).eps)
 MOST_ITERATIONS = 400
 _SETTLED = 1e-12  # |ln(Q/K)| beyond what rounding leaves
+_NEARLY = 1e-9  # below which that is worth knowing
+_BLOCK = 4096  # samples at a time, so that they stay in the processor's own memory
 _KEPT = np.log(0.05)  # of a major amount, in one step
 _VANISHED = np.log(1e-25)  # of all matter: the mixture
 _SHORTER = 0.35  # of a step, where it was too long
 _TO_NOTHING = np.log(1e-6)  # of what it was before
 _ROUNDING = np.log(1e-13)  # of all matter
 _SMALLEST_SHARE = 1e-12
+_FLAT = 100.0  # how much longer than the affinities a step may be
+_CLOSE = 1e-3  # |ln(Q/K)| below which Newton's method needs no guidance
+_DEEP = -600.0  # ln of an amount near the least that is a number of full precision
 
 
 @dataclass(frozen=True, eq=False)
@@ -114,6 +119,8 @@ class _Basis:
     ln_k : ndarray, shape (N, r)
     fixed : ndarray, shape (N, S)
         What there would be of the major substances without minor ones.
+    changing : ndarray of bool, shape (N, S)
+        Which major substances are made or used at all.
     """
 
     minor: IntArray
@@ -121,6 +128,7 @@ class _Basis:
     of_major: FloatArray
     ln_k: FloatArray
     fixed: FloatArray
+    changing: BoolArray
 
     def samples(self, rows: BoolArray | IntArray) -> _Basis:
         return _Basis(
@@ -129,6 +137,7 @@ class _Basis:
             self.of_major[rows],
             self.ln_k[rows],
             self.fixed[rows],
+            self.changing[rows],
         )
 
     def put(self, rows: IntArray, other: _Basis) -> None:
@@ -137,6 +146,7 @@ class _Basis:
         self.of_major[rows] = other.of_major
         self.ln_k[rows] = other.ln_k
         self.fixed[rows] = other.fixed
+        self.changing[rows] = other.changing
 
 
 @np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore")
@@ -154,6 +164,22 @@ def find_composition(system: System, start: FloatArray) -> Outcome:
     Outcome
         Each sample's own, whatever the others do.
     """
+    if len(start) <= _BLOCK:
+        return _find_block(system, start)
+    parts = [
+        _find_block(system.samples(rows), start[rows])
+        for rows in np.array_split(np.arange(len(start)), -(-len(start) // _BLOCK))
+    ]
+    return Outcome(
+        np.concatenate([part.ln_amounts for part in parts]),
+        np.concatenate([part.converged for part in parts]),
+        np.concatenate([part.exhausted for part in parts]),
+        np.concatenate([part.vanished for part in parts]),
+        np.concatenate([part.iterations for part in parts]),
+    )
+
+
+def _find_block(system: System, start: FloatArray) -> Outcome:
     count = len(start)
     ln_all = np.array(start)
     converged = np.zeros(count, dtype=bool)
@@ -164,8 +190,12 @@ def find_composition(system: System, start: FloatArray) -> Outcome:
     part, ln_n = system, ln_all.copy()
     basis = _choose(part, ln_n)
     for step in range(MOST_ITERATIONS):
-        affinity, size = _affinities(part, basis, ln_n)
-        settled = (np.abs(affinity) <= _SETTLED + 16 * _EPS * size).all(axis=1)
+        affinity = _affinities(part, basis, ln_n)
+        settled: BoolArray = np.asarray((np.abs(affinity) <= _SETTLED).all(axis=1))
+        near = np.flatnonzero(~settled & (np.abs(affinity) < _NEARLY).all(axis=1))
+        if len(near):
+            slack = _SETTLED + _rounding(part.samples(near), basis.samples(near), ln_n[near])
+            settled[near] = (np.abs(affinity[near]) <= slack).all(axis=1)
         total = _ln_total(part, ln_n)
         gone = ~settled & (total < _VANISHED) if part.per_total else np.zeros_like(settled)
         broken = ~np.isfinite(affinity).all(axis=1)
@@ -227,7 +257,7 @@ def _choose(system: System, ln_n: FloatArray) -> _Basis:
     of_major = np.where(free[:, None, :], nu, 0.0)
     ln_k = (mix @ system.ln_k[:, :, None])[:, :, 0]
     fixed = _conserved(system.held, np.exp(ln_n), minor, of_major, free)
-    return _Basis(minor, nu, of_major, ln_k, fixed)
+    return _Basis(minor, nu, of_major, ln_k, fixed, (of_major != 0).any(axis=1))
 
 
 def _conserved(
@@ -258,15 +288,24 @@ def _ln_total(system: System, ln_n: FloatArray) -> FloatArray:
     return total
 
 
-def _affinities(system: System, basis: _Basis, ln_n: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Return ln(Q/K) of each reaction, (N, r), and the size of its terms."""
-    ln_activity = np.where(system.in_mixture, ln_n, 0.0)
+def _ln_activities(system: System, ln_n: FloatArray) -> FloatArray:
+    """Return ln of the activities, in the units of ``ln_k``, (N, S)."""
     if system.per_total:
-        total = _ln_total(system, ln_n)[:, None]
-        ln_activity = np.where(system.in_mixture, ln_activity - total, 0.0)
-    terms = basis.nu @ ln_activity[:, :, None]
-    sizes = np.abs(basis.nu) @ np.abs(ln_activity)[:, :, None]
-    return terms[:, :, 0] - basis.ln_k, sizes[:, :, 0] + np.abs(basis.ln_k)
+        ln_n = ln_n - _ln_total(system, ln_n)[:, None]
+    return ln_n if system.in_mixture.all() else np.where(system.in_mixture, ln_n, 0.0)
+
+
+def _affinities(system: System, basis: _Basis, ln_n: FloatArray) -> FloatArray:
+    """Return ln(Q/K) of each reaction, (N, r)."""
+    ln_activity = _ln_activities(system, ln_n)
+    found: FloatArray = (basis.nu @ ln_activity[:, :, None])[:, :, 0] - basis.ln_k
+    return found
+
+
+def _rounding(system: System, basis: _Basis, ln_n: FloatArray) -> FloatArray:
+    """Return what rounding may leave of ln(Q/K), (N, r)."""
+    size = np.abs(basis.nu) @ np.abs(_ln_activities(system, ln_n))[:, :, None]
+    return 16 * _EPS * (size[:, :, 0] + np.abs(basis.ln_k))
 
 
 def _gibbs_energy(system: System, basis: _Basis, ln_n: FloatArray) -> FloatArray:
@@ -296,18 +335,32 @@ def _newton_step(
     matrix += identity
     change = solve_stack(matrix, -affinity[:, :, None])[:, :, 0]
     # Where pure phases alone make up the whole mixture nothing but its amount is left to
-    # change, along which the Gibbs energy is a straight line: down it.
+    # change, along which the Gibbs energy is a straight line: some way down it.
     weight = np.exp(ln_minor - ln_minor.max(axis=1, keepdims=True))
+    far = _FLAT * (1.0 + np.abs(affinity).max(axis=1))
     downhill = (affinity * weight * change).sum(axis=1) < 0
-    flat = ~(downhill & np.isfinite(change).all(axis=1))
+    flat = ~(downhill & (np.abs(change).max(axis=1) < far))
     if flat.any():
-        damped = matrix[flat] + 1e-6 * identity
+        damped = matrix[flat] + identity / _FLAT
         change[flat] = solve_stack(damped, -affinity[flat][:, :, None])[:, :, 0]
     return change
 
 
 def _majors(basis: _Basis, ln_n: FloatArray, ln_minor: FloatArray) -> FloatArray:
-    """Return all ln amounts for those of the minor ones; NaN where one is below zero."""
+    """Return all ln amounts for the minor ones; not finite where one is not above zero."""
+    amount = basis.fixed + (np.exp(ln_minor)[:, None, :] @ basis.of_major)[:, 0]
+    found = np.log(amount)
+    deep: BoolArray = np.asarray((ln_minor < _DEEP).any(axis=1))
+    if deep.any():
+        found[deep] = _ln_majors(basis.samples(deep), ln_minor[deep])
+    # What no reaction changes stays as it is to the last digit.
+    found = np.where(basis.changing, found, ln_n)
+    np.put_along_axis(found, basis.minor, ln_minor, axis=1)
+    return found
+
+
+def _ln_majors(basis: _Basis, ln_minor: FloatArray) -> FloatArray:
+    """Return ln of the major amounts where the minor ones may be no numbers of their own."""
     ln_terms = np.where(
         basis.of_major != 0, np.log(np.abs(basis.of_major)) + ln_minor[:, :, None], -np.inf
     )
@@ -316,10 +369,7 @@ def _majors(basis: _Basis, ln_n: FloatArray, ln_minor: FloatArray) -> FloatArray
     top = np.where(np.isfinite(most), most, 0.0)
     amount = np.sign(basis.fixed) * np.exp(ln_fixed - top)
     amount += (np.sign(basis.of_major) * np.exp(ln_terms - top[:, None, :])).sum(axis=1)
-    found = top + np.log(amount)
-    # What no reaction changes stays as it is to the last digit.
-    found = np.where((basis.of_major != 0).any(axis=1), found, ln_n)
-    np.put_along_axis(found, basis.minor, ln_minor, axis=1)
+    found: FloatArray = top + np.log(amount)
     return found
 
 
@@ -338,21 +388,22 @@ def _advance(
     # Where a mixture is all there is the slope says enough.
     has_pure = not system.in_mixture.all()
     before = _gibbs_energy(system, basis, ln_n) if has_pure else share
+    close = np.abs(affinity).max(axis=1) < _CLOSE
     below: BoolArray = np.zeros(ln_n.shape, dtype=bool)  # zero, had a little more been taken
     while len(todo):
         b = basis.samples(todo) if len(todo) < count else basis
         moved = ln_minor[todo] + share[todo, None] * change[todo]
         trial = _majors(b, ln_n[todo], moved)
-        drop = np.where(b.nu.any(axis=1), trial - ln_n[todo], 0.0)
-        np.put_along_axis(drop, b.minor, 0.0, axis=1)
+        drop = np.where(b.changing, trial - ln_n[todo], 0.0)
         good = (drop >= _KEPT).all(axis=1)  # NaN is not
-        ahead, _ = _affinities(system.samples(todo), b, trial)
+        part = system.samples(todo) if len(todo) < count else system
+        ahead = _affinities(part, b, trial)
         grown = np.exp(moved - ln_minor[todo].max(axis=1, keepdims=True))
         onward = (ahead * grown * change[todo]).sum(axis=1)
         good &= ~(onward > 0.5 * np.abs(slope[todo]))
         if has_pure:
-            energy = _gibbs_energy(system.samples(todo), b, trial)
-            good &= ~(energy > before[todo] + 1e-13 * np.abs(before[todo]))
+            energy = _gibbs_energy(part, b, trial)
+            good &= close[todo] | ~(energy > before[todo] + 1e-13 * np.abs(before[todo]) + 1e-12)
         below[todo[~good]] = ~np.isfinite(trial[~good])
         stuck = ~good & (share[todo] < _SMALLEST_SHARE)
         trial[stuck] = ln_n[todo[stuck]]
@@ -368,7 +419,7 @@ def _advance(
         found, first = _to_its_end(basis.samples(near), ln_n, ln_minor, share, change, new, near)
         # On the way there, too, the Gibbs energy must fall: else it is not to be used up.
         energy = _gibbs_energy(system.samples(near), basis.samples(near), found)
-        ended = (first >= 0) & ~system.in_mixture[first] & (energy <= before[near])
+        ended = (first >= 0) & ~system.in_mixture[first] & (energy <= before[near] + 1e-12)
         taken = near[ended]
         new[taken] = found[ended]
         spent[taken] = first[ended]
