@@ -176,6 +176,27 @@ NOTES: dict[str, Entry] = {
         "Idle tanks",
         "The first tanks of the series stand unreacted.",
     ),
+    "taken-as-reversible": Entry(
+        "Taken as reversible",
+        "Equilibrium is that of reactions running both ways, whatever their arrows say.",
+    ),
+    "stopped-short-of-equilibrium": Entry(
+        "Stopped short of equilibrium",
+        "A pure solid or liquid is used up before the reaction comes to equilibrium, or does not"
+        " form.",
+    ),
+    "points-without-answer": Entry(
+        "Points without an answer",
+        "The sweep reaches where there is no answer; its rows are empty there.",
+    ),
+    "heat-not-known": Entry(
+        "Heat not known",
+        "Enthalpies or heat capacities of some substances are not known, so that no heat is given.",
+    ),
+    "approach-not-known": Entry(
+        "Approach not known",
+        "The readings do not tell the reaction's quotient at the outlet, or no temperature has it.",
+    ),
     "gas-not-ideal": Entry(
         "The gas is not ideal",
         "The gas was taken as ideal, and an equation of state puts its Z outside 0.95 to 1.05. Ask"

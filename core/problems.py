@@ -608,6 +608,22 @@ _EQUILIBRIUM: dict[str, Entry] = {
         "The search for the composition at equilibrium did not settle. Check the constants, and"
         " pressure or volume, for values beyond sense.",
     ),
+    "hold-needs-batch": Entry(
+        "Only a batch holds its volume",
+        "A flow has no volume to hold. State 'amounts', a batch in a closed vessel, or hold the"
+        " pressure.",
+    ),
+    "sweep-does-not-fit": Entry(
+        "Not swept under this hold",
+        "A sweep runs over a temperature or a pressure that is held. Where enthalpy or energy is"
+        " held the temperature follows from it.",
+    ),
+    "constant-at-one-temperature": Entry(
+        "Constant known at one temperature",
+        "The question needs the equilibrium constant at other temperatures than the one for which"
+        " its value is stated. State it at a temperature with the enthalpy of the reaction, as a"
+        " correlation, or from thermochemistry.",
+    ),
     "no-such-temperature": Entry(
         "No such temperature",
         "The temperature that was asked for does not exist where the data hold. The detail says"

@@ -18,6 +18,8 @@ from marshmallow import Schema, fields
 from schemas.conversion import ConversionRequest
 from schemas.conversion_answer import ConversionAnswer
 from schemas.edge import Json
+from schemas.equilibrium import EquilibriumRequest
+from schemas.equilibrium_answer import EquilibriumAnswer
 from schemas.examples import EXAMPLES
 from schemas.fields import LimitSchema, StrictField, UncertainSchema, quantity_components
 from schemas.problem import ProblemSchema
@@ -102,6 +104,15 @@ OPERATIONS = (
         (JSON,),
         VolumeRequest,
         VolumeAnswer,
+    ),
+    Operation(
+        "equilibrium",
+        "POST",
+        "/v1/equilibrium",
+        "the composition at equilibrium, and how far an outlet is from it",
+        (JSON, CSV, HTML),
+        EquilibriumRequest,
+        EquilibriumAnswer,
     ),
     Operation("contract", "GET", "/v1/openapi.json", "this contract"),
     Operation("problems", "GET", "/problems", "the codes of problems and of notes in answers"),

@@ -130,12 +130,13 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    return read_request(_REQUEST, document, ("feed", "outlet"), _read_question)
+    return read_request(_REQUEST, document, ("feed", "outlet"), read_question)
 
 
-def _read_question(
+def read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> ConversionQuestion | None:
+    """Return the question of a request that states readings of feed and outlet."""
     key = read_key(request, reader, reactions)
     batch = is_batch(request["feed"]) or is_batch(request["outlet"])
     readings = StreamReader(reader, reactions, batch)

@@ -2,14 +2,40 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from dataclasses import dataclass
+from typing import Any, Literal
+
+import numpy as np
 from marshmallow import fields
 
-from schemas.feed import StreamResultSchema
-from schemas.fields import Choice, Map, Number, Quantity, describe
+from core.arrays import FloatArray
+from core.equilibrium.equilibrium import Hold
+from core.equilibrium.feed_at_equilibrium import (
+    FeedAtEquilibrium,
+    Over,
+)
+from core.equilibrium.outlet import MeasuredOutlet
+from core.errors import Note, Refused, Subject
+from core.outlet_analysis.feed import KnownFeed, feed_of_account
+from core.outlet_analysis.reconciliation import estimate
+from core.rates.equilibrium_constant import (
+    EquilibriumConstant,
+)
+from core.reactions.reaction_set import ReactionSet
+from core.real_gas.cubic import CubicEquation
+from core.real_gas.equation import KnownGas, gas_of
+from core.streams.stream import Stream, StreamPhase
+from core.substances.property_data import StandardProperties
+from core.thermochemistry.reaction_properties import properties_of
+from schemas.conversion import read_question
+from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.equilibrium_constant import read_equilibrium_constant
+from schemas.feed import read_feed
+from schemas.fields import Choice, Number, Quantity, describe
 from schemas.gas_model import gas_model, interactions
-from schemas.requests import AccountSchema
-from schemas.results import OpenSchema, TableSchema, envelope, number, numbers_by_name
-from schemas.shape import ClosedSchema
+from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
+from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
 
 MAX_POINTS = 500
@@ -71,70 +97,288 @@ class EquilibriumRequest(AccountSchema):
     sweep = fields.Nested(SweepSchema)
 
 
-class EquilibriumConstantResultSchema(OpenSchema):
-    """The constant of one reaction at the temperature of equilibrium, and where it is from."""
+_REQUEST = EquilibriumRequest()
 
-    value = fields.Float(
-        required=True,
-        allow_none=True,
-        metadata=describe("Null where it is beyond what a number of a computer holds."),
+
+@dataclass(frozen=True)
+class EquilibriumQuestion:
+    """What an equilibrium request asks for.
+
+    Attributes
+    ----------
+    problem : FeedAtEquilibrium
+    gas_model : str
+    gas : KnownGas or None
+        Of a gas model that is not ideal.
+    outlet : MeasuredOutlet or None
+    per_mole_of_key : bool
+    """
+
+    problem: FeedAtEquilibrium
+    gas_model: str
+    gas: KnownGas | None
+    outlet: MeasuredOutlet | None
+    per_mole_of_key: bool
+
+
+def read(document: Any) -> tuple[EquilibriumQuestion, EdgeMap]:
+    """Return what a request asks for, and its edge map.
+
+    Raises
+    ------
+    ShapeError, MeaningError
+    """
+    streams = (
+        ("feed", "outlet") if isinstance(document, dict) and "outlet" in document else ("feed",)
     )
-    unit = fields.String(required=True)
-    natural_logarithm = number("Of the thermodynamic constant.", required=True)
-    from_ = fields.String(
-        data_key="from",
-        required=True,
-        metadata=describe("", enum=["stated", "van-t-hoff", "correlation", "thermochemistry"]),
+    question, edge = read_request(_REQUEST, document, streams, _read_question)
+    return question, edge.per_mole_of_key() if question.per_mole_of_key else edge
+
+
+def _read_question(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> EquilibriumQuestion | None:
+    key, feed, outlet = _read_streams(request, reader, reactions)
+    phase: StreamPhase = request["feed"].get("phase", "gas") if feed is None else feed.stream.phase
+    constants = _read_constants(request, reader, reactions, phase)
+    reader.at(("hold",), "/hold")
+    reader.at(("gas_model",), "/gas_model")
+    at = _read_conditions(request.get("at", {}), reader)
+    over, values = _read_sweep(request, reader)
+    interactions = _read_interactions(request, reader, reactions)
+    if feed is None or constants is None or len(reader.faults):
+        return None
+    places = _places(reader, reactions)
+    gas = None
+    if request["gas_model"] != "ideal":
+        if phase != "gas":
+            reader.fault("field-not-used", "/gas_model", "the feed is a liquid; leave it out")
+            return None
+        try:
+            gas = gas_of(
+                request["gas_model"], reactions, feed.stream.in_phase, places, interactions
+            )
+        except Refused as refused:
+            reader.collect(refused)
+            return None
+    elif interactions:
+        reader.fault(
+            "field-not-used",
+            "/interactions",
+            "an ideal gas has none; name a gas model, or leave them out",
+        )
+        return None
+    witness = _witness(reactions, feed.stream) if gas is None else None
+    properties = _read_properties(request["hold"], reader, reactions, phase, places)
+    if len(reader.faults):
+        return None
+    problem = FeedAtEquilibrium(
+        reactions=reactions,
+        key=key,
+        feed=feed.stream,
+        constants=constants,
+        hold=request["hold"],
+        equation=None if gas is None else gas.equation,
+        witness=witness,
+        properties=properties,
+        over=over,
+        values=values,
+        **at,
     )
-    standard_pressure = number("Of gases, where it counts.")
-    enthalpy_of_reaction = number("At that temperature, per mole of reaction as written.")
+    return EquilibriumQuestion(problem, request["gas_model"], gas, outlet, feed.per_mole_of_key)
 
 
-class ApproachSchema(OpenSchema):
-    """How far the measured outlet is from the equilibrium of one reaction."""
-
-    approach = number(
-        "Equilibrium temperature of the outlet's composition less the outlet's, of an exothermic"
-        " reaction; the opposite of an endothermic one: positive means short of equilibrium.",
-        required=True,
+def _read_streams(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> tuple[int, KnownFeed | None, MeasuredOutlet | None]:
+    """Return the key and the feed, and the outlet where one was measured: of one account then."""
+    if "outlet" not in request:
+        key = read_key(request, reader, reactions)
+        return key, read_feed(request["feed"], "/feed", reader, reactions, key), None
+    account = read_question(request, reader, reactions)
+    for name in ("temperature", "pressure"):
+        liquid = request["outlet"].get("phase") == "liquid"
+        if name not in request["outlet"] and not (name == "pressure" and liquid):
+            reader.fault(
+                "field-needed",
+                f"/outlet/{name}",
+                f"the approach to equilibrium hangs on the outlet's {name}; state it",
+            )
+    if account is None:
+        return -1, None, None
+    problem, sides = account.problem, account.conditions
+    for side in ("feed", "outlet"):
+        if sides[side] is None:
+            reader.fault(
+                "field-needed",
+                f"/{side}/phase",
+                "equilibrium is that of one gas or one liquid, and these streams are of several"
+                " phases; state the one in which the reactions run, with its streams alone",
+            )
+    of_feed, of_outlet = sides["feed"], sides["outlet"]
+    if of_feed is None or of_outlet is None or of_outlet.temperature is None or reader.faults:
+        return problem.key, None, None
+    try:
+        found = estimate(problem)
+        feed = feed_of_account(found, of_feed)
+    except Refused as refused:
+        reader.collect(refused)
+        return problem.key, None, None
+    reader.assumed.extend(feed.assumed)
+    reader.notes.extend(feed.notes)
+    reader.assumed.extend(account.readings.readings.default_notes(set(found.readings.subjects)))
+    volume = form = None
+    if of_outlet.phase == "liquid":
+        sides_: tuple[Literal["outlet", "feed"], ...] = ("outlet", "feed")
+        for side_ in sides_:
+            own = found.liquid_volume(side_)
+            if own is not None and np.isfinite(own):
+                volume, form = float(own), found.liquid_volume_form(side_)
+                break
+    outlet = MeasuredOutlet(
+        flows=found.outlet_flows,
+        forms=found.account.outlet_map,
+        covariance=found.covariance,
+        temperature=of_outlet.temperature,
+        pressure=of_outlet.pressure,
+        volume=volume,
+        volume_form=form,
     )
-    equilibrium_temperature = number(
-        "At which the outlet's composition would be at equilibrium.", required=True
-    )
-    quotient_over_constant = number("Q/K at the outlet's temperature.", required=True)
+    return problem.key, feed, outlet
 
 
-class EquilibriumHeatSchema(OpenSchema):
-    """The heat of going from the feed to equilibrium."""
-
-    duty = number("To be supplied (below zero: removed).")
-    adiabatic_rise = number("Where no heat passes.")
-
-
-class EquilibriumResult(OpenSchema):
-    """The composition at equilibrium, and what it is compared with."""
-
-    hold = fields.String(required=True)
-    gas_model = fields.String(required=True)
-    temperature = number(required=True)
-    pressure = number(required=True)
-    conversion = number("Of the key.", required=True)
-    largest_conversion = number("Of the key, by what is fed.", required=True)
-    extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
-    inlet = fields.Nested(StreamResultSchema, required=True)
-    outlet = fields.Nested(StreamResultSchema, required=True)
-    equilibrium_constants = numbers_by_name(
-        EquilibriumConstantResultSchema, "By reaction.", required=True
-    )
-    fugacity_coefficients = numbers_by_name(text="By substance of a real gas.")
-    condensed = Map(
-        fields.Boolean(),
-        at_least=0,
-        metadata=describe("Whether any is left or formed of a pure condensed substance."),
-    )
-    heat = fields.Nested(EquilibriumHeatSchema)
-    approach = numbers_by_name(ApproachSchema, "By reaction, of the measured outlet.")
-    sweep = fields.Nested(TableSchema)
+def _read_constants(
+    request: Json, reader: RequestReader, reactions: ReactionSet, phase: StreamPhase
+) -> tuple[EquilibriumConstant, ...] | None:
+    found = []
+    for j, said in enumerate(request["reactions"]):
+        pointer = f"/reactions/{j}"
+        if isinstance(said, str) or "equilibrium_constant" not in said:
+            reader.fault(
+                "field-needed",
+                pointer if isinstance(said, str) else f"{pointer}/equilibrium_constant",
+                "the equilibrium of a reaction needs its constant: write the reaction as an object"
+                " with 'equation' and 'equilibrium_constant', which may be"
+                ' {"from": "thermochemistry"}',
+            )
+            continue
+        if "rate" in said:
+            reader.fault(
+                "field-not-used", f"{pointer}/rate", "equilibrium hangs on no rate; leave it out"
+            )
+        constant = read_equilibrium_constant(said, pointer, reader, reactions, j, phase)
+        if constant is not None:
+            found.append(constant)
+    return tuple(found) if len(found) == len(request["reactions"]) else None
 
 
-EquilibriumAnswer = envelope("EquilibriumAnswer", EquilibriumResult)
+def _read_conditions(document: Json, reader: RequestReader) -> Json:
+    reader.at(("at",), "/at")
+    stated: Json = {}
+    for name in ("temperature", "pressure", "volume"):
+        if name in document:
+            found = reader.quantity(document[name], child("/at", name), ("at", name), name, above=0)
+            stated[name] = None if found is None else found.value
+    return stated
+
+
+def _read_sweep(request: Json, reader: RequestReader) -> tuple[Over | None, FloatArray | None]:
+    if "sweep" not in request:
+        return None, None
+    said = request["sweep"]
+    reader.at(("sweep",), "/sweep")
+    reader.at(("sweep", "over"), "/sweep/over")
+    over: Over = said["over"]
+    ends = [
+        reader.quantity(said[field], child("/sweep", name), ("sweep", name), over, above=0)
+        for field, name in (("from_", "from"), ("to", "to"))
+    ]
+    if ends[0] is None or ends[1] is None:
+        return over, None
+    low, high = ends[0].value, ends[1].value
+    if low == high:
+        reader.fault(
+            "conflicting-fields", "/sweep/to", "the sweep ends where it begins; state another end"
+        )
+    spaced = np.geomspace if said["spacing"] == "logarithmic" else np.linspace
+    return over, spaced(low, high, int(said["points"]))
+
+
+def _read_interactions(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> dict[tuple[int, int], float]:
+    found: dict[tuple[int, int], float] = {}
+    for k, said in enumerate(request.get("interactions", ())):
+        places = []
+        for m, name in enumerate(said["between"]):
+            i = reactions.find(name)
+            if i is None and reactions is not NOTHING_KNOWN:
+                reader.fault(
+                    "unknown-substance",
+                    child("/interactions", k, "between", m),
+                    f"found {name!r}; the substances of this request are"
+                    f" {', '.join(reactions.names)}",
+                )
+            elif i is not None:
+                places.append(i)
+        if len(places) < 2:
+            continue
+        pair = (min(places), max(places))
+        if pair[0] == pair[1] or pair in found:
+            reader.fault(
+                "conflicting-fields",
+                child("/interactions", k, "between"),
+                "a pair is two substances, and each pair stands once",
+            )
+        found[pair] = said["parameter"]
+    return found
+
+
+def _places(reader: RequestReader, reactions: ReactionSet) -> Callable[[str], Subject]:
+    def place(name: str) -> Subject:
+        declared: Subject = ("species", name)
+        return declared if declared in reader.places else ("substances", name)
+
+    for name in reactions.names:
+        if ("species", name) not in reader.places and ("substances", name) not in reader.places:
+            reader.at(("substances", name), "/reactions")
+    return place
+
+
+def _witness(reactions: ReactionSet, feed: Stream) -> CubicEquation | None:
+    """Return an equation of state to judge an ideal gas by, where all its constants are known."""
+    if feed.phase != "gas":
+        return None
+    try:
+        return gas_of(
+            "peng-robinson", reactions, feed.in_phase, lambda name: ("species", name)
+        ).equation
+    except Refused:
+        return None
+
+
+def _read_properties(
+    hold: Hold,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    phase: StreamPhase,
+    places: Callable[[str], Subject],
+) -> tuple[StandardProperties, ...] | None:
+    """Return every substance's properties; None where no heat can be told and none is needed."""
+    try:
+        return properties_of(reactions.substances, phase, places, ("enthalpy", "heat_capacity"))
+    except Refused as refused:
+        if not hold.startswith("temperature"):
+            reader.collect(refused)
+            return None
+        lacking = [str(fault.facts.get("substance", "")) for fault in refused.faults]
+        reader.notes.append(
+            Note(
+                "heat-not-known",
+                "no heat is given: enthalpies and heat capacities are not known of"
+                f" {', '.join(name for name in lacking if name) or 'every substance'}; state them"
+                " under 'species'",
+                subject=("feed",),
+            )
+        )
+        return None

@@ -7,13 +7,17 @@ from marshmallow import fields
 from schemas.fields import Choice, List, Number, Text, describe
 from schemas.shape import ClosedSchema
 
+EQUATIONS = {
+    "peng-robinson": "the equation of Peng and Robinson (1976)",
+    "soave-redlich-kwong": "the equation of Soave, Redlich and Kwong (Soave 1972)",
+}
+
 
 def gas_model() -> Choice:
     """Return the field that chooses how a gas is modelled."""
     return Choice(
         "ideal",
-        "peng-robinson",
-        "soave-redlich-kwong",
+        *EQUATIONS,
         load_default="ideal",
         metadata=describe(
             "An equation of state takes critical constants and acentric factors from the packaged"

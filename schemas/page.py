@@ -8,12 +8,16 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Literal
+from math import floor, isfinite, log10
+from typing import Any, Literal
 
 from schemas.answer import Table
 from schemas.edge import Json
 
 Cells = Sequence[float | None]
+
+DIGITS = 5
+"""Significant digits of a number whose uncertainty is not known."""
 
 
 @dataclass(frozen=True)
@@ -78,3 +82,33 @@ class Page:
     numbers: tuple[tuple[str, Json | None], ...]
     plots: tuple[Plot, ...] = ()
     tables: tuple[tuple[str, Table], ...] = ()
+
+
+def told(number: Json | None) -> str:
+    """Return a number as people write it: with its uncertainty to two digits, and its unit."""
+    if number is None:
+        return "not known"
+    value, u = number["value"], number.get("u")
+    unit = "" if number["unit"] == "1" else f" {number['unit']}"
+    if not u:
+        return cell(value) + unit
+    places = max(-12, min(12, 1 - floor(log10(u))))
+    size = max(abs(value), u)
+    if size >= 10.0**DIGITS * 10 or size < 1e-4:
+        power = floor(log10(size))
+        scale = 10.0**power
+        digits = max(0, places + power)
+        return f"({value / scale:.{digits}f} ± {u / scale:.{digits}f})e{power:+d}{unit}"
+    digits = max(0, places)
+    return f"{round(value, places):.{digits}f} ± {round(u, places):.{digits}f}{unit}"
+
+
+def cell(value: Any) -> str:
+    """Return what a cell of a table shows."""
+    if value is None:
+        return "-"
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    if isinstance(value, int | float) and isfinite(value):
+        return f"{value:.{DIGITS}g}"
+    return str(value)

@@ -80,6 +80,9 @@ class PropertySourcesSchema(OpenSchema):
     enthalpy_of_formation = fields.Nested(SourcedSchema)
     entropy = fields.Nested(SourcedSchema)
     heat_capacity = fields.Nested(HeatCapacitySourceSchema)
+    critical_temperature = fields.Nested(SourcedSchema)
+    critical_pressure = fields.Nested(SourcedSchema)
+    acentric_factor = fields.Nested(SourcedSchema)
 
 
 class ProvenanceSchema(OpenSchema):

@@ -7,7 +7,12 @@ from collections.abc import Iterable
 from marshmallow import fields
 
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
-from core.substances.property_data import StandardProperties
+from core.substances.property_data import (
+    SOURCES,
+    CriticalConstants,
+    Entry,
+    StandardProperties,
+)
 from core.substances.substance import StatedProperties
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.fields import List, Number, OneOf, Quantity, Text, describe
@@ -196,4 +201,28 @@ def _sources(edge: EdgeMap, p: StandardProperties) -> Json:
                 "lowest": edge.number(cp.lowest, "temperature"),
                 "highest": edge.number(cp.highest, "temperature"),
             }
+    return told
+
+
+def write_critical(edge: EdgeMap, entry: Entry | None, constants: CriticalConstants) -> Json:
+    """Return the critical constants of a substance with their sources."""
+    told: Json = {}
+    if entry is not None:
+        told = {"name": entry.name, "registry_number": entry.registry_number}
+    for name, value, dimension, source in (
+        (
+            "critical_temperature",
+            constants.temperature,
+            "temperature",
+            constants.temperature_source,
+        ),
+        ("critical_pressure", constants.pressure, "pressure", constants.pressure_source),
+        (
+            "acentric_factor",
+            constants.acentric_factor,
+            "dimensionless",
+            constants.acentric_factor_source,
+        ),
+    ):
+        told[name] = {**edge.number(value, dimension), "source": SOURCES.get(source, source)}
     return told

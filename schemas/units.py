@@ -43,6 +43,8 @@ DEFAULT_UNITS: dict[str, str] = {
     "frequency": "1/h",
     "reaction_rate": "kmol/(m3 h)",
     "reaction_rate_per_mass": "mol/(kg h)",
+    "energy": "MJ",
+    "power": "kW",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
 }

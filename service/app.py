@@ -7,7 +7,15 @@ from typing import TYPE_CHECKING, Any
 
 from flask import Flask, Response
 
-from service import conversion, information, logs, problem_details, stoichiometric_table, volume
+from service import (
+    conversion,
+    equilibrium,
+    information,
+    logs,
+    problem_details,
+    stoichiometric_table,
+    volume,
+)
 
 if TYPE_CHECKING:
     from _typeshed.wsgi import StartResponse, WSGIEnvironment
@@ -41,7 +49,7 @@ def create_app(max_body: int = MAX_BODY, *, logged: bool = True) -> Flask:
     app.config["MAX_CONTENT_LENGTH"] = max_body
     app.url_map.strict_slashes = True
     app.url_map.merge_slashes = False
-    for module in (information, stoichiometric_table, conversion, volume):
+    for module in (information, stoichiometric_table, conversion, volume, equilibrium):
         app.register_blueprint(module.blueprint)
     problem_details.register(app)
 

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import base64
 from functools import cache
-from math import floor, isfinite, log10
 from pathlib import Path
 from typing import Any
 
@@ -13,13 +12,11 @@ from jinja2 import Environment, FileSystemLoader, StrictUndefined
 
 from schemas.answer import Answer
 from schemas.edge import Json
-from schemas.page import Page
+from schemas.page import Page, cell, told
 from service import drawing
 
 POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'; base-uri 'none'"
 """Of what a page may load: nothing but what it holds itself."""
-DIGITS = 5
-"""Significant digits of a number whose uncertainty is not known."""
 SEVERITIES = {"caution": "Caution", "warning": "Warning", "info": "Note"}
 
 
@@ -69,39 +66,9 @@ def _picture(svg: str) -> str:
     return "data:image/svg+xml;base64," + base64.b64encode(svg.encode()).decode()
 
 
-def told(number: Json | None) -> str:
-    """Return a number as people write it: with its uncertainty to two digits, and its unit."""
-    if number is None:
-        return "not known"
-    value, u = number["value"], number.get("u")
-    unit = "" if number["unit"] == "1" else f" {number['unit']}"
-    if not u:
-        return cell(value) + unit
-    places = max(-12, min(12, 1 - floor(log10(u))))
-    size = max(abs(value), u)
-    if size >= 10.0**DIGITS * 10 or size < 1e-4:
-        power = floor(log10(size))
-        scale = 10.0**power
-        digits = max(0, places + power)
-        return f"({value / scale:.{digits}f} ± {u / scale:.{digits}f})e{power:+d}{unit}"
-    digits = max(0, places)
-    return f"{round(value, places):.{digits}f} ± {round(u, places):.{digits}f}{unit}"
-
-
 def interval(number: Json | None) -> str:
     """Return the coverage interval of a number in words; empty without one."""
     if number is None or "interval" not in number:
         return ""
     low, high = number["interval"]
     return f"{cell(low)} to {cell(high)} ({100 * number['coverage']:.4g} %)"
-
-
-def cell(value: Any) -> str:
-    """Return what a cell of a table shows."""
-    if value is None:
-        return "-"
-    if isinstance(value, bool):
-        return "yes" if value else "no"
-    if isinstance(value, int | float) and isfinite(value):
-        return f"{value:.{DIGITS}g}"
-    return str(value)

@@ -109,8 +109,8 @@ class Equilibrium:
     ln_amounts : ndarray, shape (N, S)
         -inf for what is not there; finite where the amount itself underflows.
     extents : ndarray, shape (N, R)
-        As the feed. Of dependent reactions those with the least sum of squares: then
-        only the changes of the substances are unique.
+        As the feed. Of dependent reactions one choice: then only the changes of the
+        substances are unique.
     ln_quotient_over_constant : ndarray, shape (N, R)
         ln(Q/K) of each reaction as stated, zero at equilibrium; NaN where Q has no
         value, since a substance of the reaction is not there.
@@ -168,6 +168,26 @@ def solve_equilibrium(problem: EquilibriumProblem) -> Equilibrium:
     else:
         temperature = solver.find_temperature()
     return solver.answer(temperature, rows)
+
+
+def _extents(nu: FloatArray, change: FloatArray, size: FloatArray) -> FloatArray:
+    """Return the extents behind changes (N, S), each known to rounding of its ``size``.
+
+    A trace that is made out of nothing tells its extent to the last digit,
+    where the loss of what there is much of tells none.
+    """
+    found = np.full((len(change), len(nu)), np.nan)
+    good = np.isfinite(change).all(axis=1)
+    if not len(nu) or not good.any():
+        return found
+    weight = 1.0 / np.where(size[good] > 0, size[good], 1.0)
+    # Each reaction in units in which what it makes or uses of the scarcest is one.
+    steep = np.abs(nu) * weight[:, None, :]
+    unit = 1.0 / steep.max(axis=2)
+    scaled = nu * weight[:, None, :] * unit[:, :, None]
+    back = np.linalg.pinv(scaled)
+    found[good] = ((change[good] * weight)[:, None, :] @ back)[:, 0] * unit
+    return found
 
 
 def _given(values: FloatArray | None, count: int) -> FloatArray:
@@ -483,8 +503,10 @@ class _Solver:
                 values[bad] = np.nan
             stopped[bad] = False
         amounts = np.exp(ln_amounts)
+        still = (nu == 0).all(axis=0)
+        amounts[:, still] = np.where(np.isnan(amounts), np.nan, problem.feed)[:, still]
         change = amounts - problem.feed
-        extents = change @ np.linalg.pinv(nu) if len(nu) else np.zeros((count, 0))
+        extents = _extents(nu, change, np.maximum(amounts, problem.feed))
         conserved = self.space.conserved
         off = np.abs(change @ conserved.T)
         size = (amounts + problem.feed) @ np.abs(conserved.T)

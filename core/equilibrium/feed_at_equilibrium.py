@@ -273,7 +273,7 @@ def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
             constant_subject(problem.reactions, j),
             "one value is stated of the equilibrium constant, and the question needs it over"
             " temperature: state it 'at' a temperature with the 'enthalpy' of the reaction, as a"
-            " correlation, or as {{\"from\": \"thermochemistry\"}}".replace("{{", "{").replace(
+            ' correlation, or as {{"from": "thermochemistry"}}'.replace("{{", "{").replace(
                 "}}", "}"
             ),
         )

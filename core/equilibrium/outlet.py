@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -190,7 +190,9 @@ def _known(constant: EquilibriumConstant) -> tuple[float, float]:
     return COLDEST, HOTTEST
 
 
-def _none(subject: Subject, reaction: str, why: str, facts: dict[str, Fact] | None = None) -> Note:
+def _none(
+    subject: Subject, reaction: str, why: str, facts: Mapping[str, Fact] | None = None
+) -> Note:
     return Note(
         "approach-not-known",
         "no approach of {reaction} is given: " + why,

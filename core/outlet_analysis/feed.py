@@ -85,9 +85,22 @@ def known_feed(
             ),
         )
     found = estimate_feed(reactions, key, tuple(streams), batch)
+    return feed_of_account(found, conditions)
+
+
+def feed_of_account(found: Estimate, conditions: Conditions) -> KnownFeed:
+    """Return the feed of an account that was estimated, with its outlet or alone.
+
+    Raises
+    ------
+    Refused
+        ``flow-negative``, and as :func:`core.streams.known.join_streams`.
+    """
+    problem = found.account.problem
+    reactions, streams = problem.reactions, problem.feed
     each = _stream_flows(reactions, found, conditions)
     stream, assumed = join_streams(
-        reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=batch
+        reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=problem.batch
     )
     scaled = bool(found.per_mole_of_key)
     told = [note for note in found.notes if note.code != "no-redundancy"]
@@ -96,8 +109,8 @@ def known_feed(
         told.append(
             Note(
                 "readings-inconsistent",
-                "the readings of the feed contradict each other: chi-square {found} against a"
-                " limit of {limit}; the flows that fit them best are taken",
+                "the readings contradict each other: chi-square {found} against a limit of {limit};"
+                " the flows that fit them best are taken",
                 "warning",
                 conditions.subject,
                 {

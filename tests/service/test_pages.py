@@ -7,7 +7,7 @@ from html.parser import HTMLParser
 import pytest
 
 from schemas.answer import Answer, Table
-from schemas.page import Curve, Page, Plot
+from schemas.page import Curve, Page, Plot, told
 from service import drawing, pages
 
 SVG = "{http://www.w3.org/2000/svg}"
@@ -55,7 +55,8 @@ def test_curves_are_named_and_told_apart_without_colour():
 @pytest.mark.parametrize("name", ["_hidden", "$x^2$", "<b>&", "ökosüß 水", "a" * 200])
 def test_a_caller_s_names_stay_what_they_are(name):
     curves = (Curve(name, [0.0, 1.0], [0.0, 1.0]), Curve("other", [0.0, 1.0], [1.0, 0.0]))
-    assert name in [(word or "").lstrip("\u200b") for word in words(drawing.svg(plot(curves=curves)))]
+    said = words(drawing.svg(plot(curves=curves)))
+    assert name in [(word or "").lstrip("\u200b") for word in said]
 
 
 def test_a_gap_is_a_gap_and_a_lone_value_is_shown():
@@ -124,7 +125,7 @@ def test_a_page_holds_everything_itself():
     ],
 )
 def test_numbers_are_told_to_what_is_known_of_them(number, words):
-    assert pages.told(number) == words
+    assert told(number) == words
 
 
 def test_an_interval_is_told_with_its_coverage():
