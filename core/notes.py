@@ -11,8 +11,8 @@ from core.problems import Entry
 NOTES: dict[str, Entry] = {
     "screening-calculation": Entry(
         "A screening calculation",
-        "Ideal reactors under stated conditions: no relief, runaway or flammability assessment."
-        " Follow local codes and licensed practice.",
+        "Ideal reactors, or equilibrium, under stated conditions: no relief, runaway or"
+        " flammability assessment. Follow local codes and licensed practice.",
     ),
     "default-uncertainty": Entry(
         "Default uncertainty",
@@ -196,6 +196,11 @@ NOTES: dict[str, Entry] = {
     "approach-not-known": Entry(
         "Approach not known",
         "The readings do not tell the reaction's quotient at the outlet, or no temperature has it.",
+    ),
+    "fuel-with-oxidant": Entry(
+        "Fuel beside an oxidant",
+        "The feed holds something that burns and something that it burns with. Flammability is not"
+        " assessed; follow local codes and licensed practice.",
     ),
     "gas-not-ideal": Entry(
         "The gas is not ideal",

@@ -27,6 +27,7 @@ from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation
 from core.real_gas.remarks import remark_on_gas
+from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import temperatures_known
@@ -177,8 +178,10 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         subject=("feed",),
     )
     start = None
-    if problem.properties is not None and feed.temperature is not None:
-        _check_range(problem, temperature)
+    beyond = _beyond_range(problem, temperature)
+    if beyond and not problem.hold.startswith("temperature"):
+        raise Refused(beyond)
+    if problem.properties is not None and feed.temperature is not None and not beyond:
         start = _energy(problem, feed.flows, feed.temperature, feed.pressure, z)
         asked = replace(
             asked,
@@ -199,7 +202,7 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         heat=None if start is None else _heat(problem, states, start),
         notes=(),
     )
-    return replace(reached, notes=tuple(_notes(reached)))
+    return replace(reached, notes=(*_without_heat(beyond), *_notes(reached)))
 
 
 def _both_ways(reactions: ReactionSet) -> ReactionSet:
@@ -354,14 +357,38 @@ def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None)
     return float(state.compressibility[0])
 
 
-def _check_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> None:
-    assert problem.properties is not None
-    at = [problem.feed.temperature]
+def _beyond_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> list[Fault]:
+    """Return the faults of temperatures beyond the heat capacities, each at its own place."""
+    if problem.properties is None or problem.feed.temperature is None:
+        return []
+    asked: list[tuple[Subject, FloatArray]] = [
+        (("feed", "temperature"), np.array([problem.feed.temperature]))
+    ]
     if temperature is not None:
-        at += [float(temperature.min()), float(temperature.max())]
-    faults = beyond_range(problem.properties, np.array(at, dtype=float), ("feed", "temperature"))
-    if faults:
-        raise Refused(faults)
+        asked.append((("at", "temperature"), temperature[:1]))
+        asked.append((("sweep",), temperature[1:]))
+    faults = [
+        fault
+        for subject, at in asked
+        if len(at)
+        for fault in beyond_range(problem.properties, at, subject)
+    ]
+    # What is not stated otherwise is the feed's, and one place is enough to say so.
+    if len(asked) > 1 and problem.temperature is None:
+        faults = [fault for fault in faults if fault.subject != ("at", "temperature")]
+    return faults
+
+
+def _without_heat(beyond: list[Fault]) -> Iterator[Note]:
+    """Say why no heat is told."""
+    if beyond:
+        first = beyond[0]
+        yield Note(
+            "heat-not-known",
+            "no heat is given: " + first.detail,
+            subject=first.subject,
+            facts=first.facts,
+        )
 
 
 def _energy(
@@ -445,6 +472,7 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
                 "first": row,
             },
         )
+    yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
     equation = problem.equation or problem.witness
     if problem.feed.phase == "gas" and equation is not None:
         good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))

@@ -1,0 +1,523 @@
+"""The answer to an equilibrium request: the composition, as numbers, a table and a page."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+from marshmallow import fields
+
+from core.arrays import FloatArray
+from core.equilibrium.feed_at_equilibrium import (
+    FeedReached,
+    constant_subject,
+)
+from core.equilibrium.outlet import ReactionApproach
+from core.errors import Note
+from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.rates.constants import Constant
+from core.rates.equilibrium_constant import (
+    LnCorrelation,
+    VantHoff,
+    coefficient_sum,
+    expected_unit_parts,
+)
+from core.substances.property_data import PACKAGED, StandardProperties
+from core.thermochemistry.reaction_properties import ReactionProperties
+from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.edge import EdgeMap, Json
+from schemas.equilibrium import EquilibriumQuestion
+from schemas.feed import StreamResultSchema, words_of, write_stream
+from schemas.fields import Map, describe
+from schemas.gas_model import EQUATIONS
+from schemas.page import Curve, Page, Plot, told
+from schemas.results import OpenSchema, TableSchema, envelope, number, numbers_by_name
+from schemas.thermochemistry import write_critical, write_sources
+from schemas.units import find_unit, spell
+
+
+class EquilibriumConstantResultSchema(OpenSchema):
+    """The constant of one reaction at the temperature of equilibrium, and where it is from."""
+
+    value = fields.Float(
+        required=True,
+        allow_none=True,
+        metadata=describe("Null where it is beyond what a number of a computer holds."),
+    )
+    unit = fields.String(required=True)
+    natural_logarithm = number("Of the thermodynamic constant.", required=True)
+    from_ = fields.String(
+        data_key="from",
+        required=True,
+        metadata=describe("", enum=["stated", "van-t-hoff", "correlation", "thermochemistry"]),
+    )
+    standard_pressure = number("Of gases, where it counts.")
+    enthalpy_of_reaction = number("At that temperature, per mole of reaction as written.")
+
+
+class ApproachSchema(OpenSchema):
+    """How far the measured outlet is from the equilibrium of one reaction."""
+
+    approach = number(
+        "Equilibrium temperature of the outlet's composition less the outlet's, of an exothermic"
+        " reaction; the opposite of an endothermic one: positive means short of equilibrium.",
+        required=True,
+    )
+    equilibrium_temperature = number(
+        "At which the outlet's composition would be at equilibrium.", required=True
+    )
+    quotient_over_constant = number("Q/K at the outlet's temperature.", required=True)
+
+
+class EquilibriumHeatSchema(OpenSchema):
+    """The heat of going from the feed to equilibrium."""
+
+    duty = number("To be supplied (below zero: removed).")
+    adiabatic_rise = number("Where no heat passes.")
+
+
+class EquilibriumResult(OpenSchema):
+    """The composition at equilibrium, and what it is compared with."""
+
+    key = fields.String(required=True)
+    hold = fields.String(required=True)
+    gas_model = fields.String(required=True)
+    temperature = number(required=True)
+    pressure = number("Null for a liquid whose pressure is not stated.", required=True)
+    conversion = number("Of the key.", required=True)
+    largest_conversion = number("Of the key, by what is fed.", required=True)
+    smallest_conversion = number("Of the key, by what is fed.", required=True)
+    limiting = fields.String(required=True, allow_none=True)
+    extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
+    inlet = fields.Nested(StreamResultSchema, required=True)
+    outlet = fields.Nested(StreamResultSchema, required=True)
+    equilibrium_constants = numbers_by_name(
+        EquilibriumConstantResultSchema, "By reaction.", required=True
+    )
+    fugacity_coefficients = numbers_by_name(text="By substance of a real gas.")
+    condensed = Map(
+        fields.Boolean(),
+        at_least=0,
+        metadata=describe("Whether any is left or formed of a pure condensed substance."),
+    )
+    heat = fields.Nested(
+        EquilibriumHeatSchema,
+        allow_none=True,
+        metadata=describe("Null where enthalpies are not known."),
+    )
+    approach = numbers_by_name(ApproachSchema, "By reaction, of the measured outlet.")
+    sweep = fields.Nested(TableSchema)
+
+
+EquilibriumAnswer = envelope("EquilibriumAnswer", EquilibriumResult)
+
+
+HEATS = {"duty": "heat supplied (below zero: removed)", "adiabatic_rise": "adiabatic rise"}
+"""How a page calls them."""
+
+LARGEST_EXPONENT = 690.0
+"""ln of what a number of a computer holds."""
+
+FORMS: dict[type, str] = {
+    Constant: "stated",
+    VantHoff: "van-t-hoff",
+    LnCorrelation: "correlation",
+    ReactionProperties: "thermochemistry",
+}
+"""How a constant was found, by its form."""
+
+Approaches = tuple[tuple[ReactionApproach | None, ...], tuple[Note, ...]]
+
+METHOD = (
+    "equilibrium of the reactions stated, by Newton's method in the logarithms of the minor"
+    " substances"
+)
+
+
+SCREENING = Note(
+    "screening-calculation",
+    "equilibrium of the stated reactions alone, which says nothing of how fast or how safely it is"
+    " reached: no relief, runaway or flammability assessment. Follow local codes and licensed"
+    " practice",
+    "caution",
+)
+
+
+def write(
+    question: EquilibriumQuestion,
+    reached: FeedReached,
+    approach: Approaches | None,
+    edge: EdgeMap,
+) -> Answer:
+    """Return the answer that holds an equilibrium."""
+    return _Writer(question, reached, approach, edge).answer()
+
+
+class _Writer:
+    def __init__(
+        self,
+        question: EquilibriumQuestion,
+        reached: FeedReached,
+        approach: Approaches | None,
+        edge: EdgeMap,
+    ) -> None:
+        self.question, self.reached, self.approach, self.edge = question, reached, approach, edge
+        self.problem, self.states = question.problem, reached.states
+        self.reactions, self.feed = self.problem.reactions, self.problem.feed
+        self.names = self.reactions.names
+        self.ids = [reaction.id for reaction in self.reactions.reactions]
+        self.words = words_of(self.feed.batch)
+        self.temperature = float(self.states.temperature[0])
+
+    def answer(self) -> Answer:
+        problem, states, edge = self.problem, self.states, self.edge
+        reach = self.reached.range
+        result: Json = {
+            "key": self.names[problem.key],
+            "hold": problem.hold,
+            "gas_model": self.question.gas_model,
+            "temperature": edge.number(self.temperature, "temperature"),
+            "pressure": self._number(states.pressure[0], "pressure"),
+            "conversion": edge.number(float(self.reached.conversion[0]), "dimensionless"),
+            "largest_conversion": edge.number(reach.largest, "dimensionless"),
+            "smallest_conversion": edge.number(reach.smallest + 0.0, "dimensionless"),
+            "limiting": None if reach.limiting is None else self.names[reach.limiting],
+            "extents": self._extents(),
+            "inlet": self._stream(
+                self.feed.flows,
+                self.feed.temperature,
+                self.feed.pressure,
+                self.reached.compressibility_of_feed,
+                self._inlet_volume(),
+            ),
+            "outlet": self._stream(
+                states.amounts[0],
+                self.temperature,
+                _finite(states.pressure[0]),
+                float(states.compressibility[0]),
+                _finite(states.volume[0]),
+            ),
+            "equilibrium_constants": self._constants(),
+        }
+        if self.question.gas is not None:
+            inside = np.flatnonzero(self.feed.in_phase).tolist()
+            coefficients = np.exp(states.ln_fugacity_coefficients[0])
+            result["fugacity_coefficients"] = {
+                self.names[i]: edge.number(float(coefficients[i]), "dimensionless") for i in inside
+            }
+        pure = np.flatnonzero(~self.feed.in_phase).tolist()
+        if pure:
+            result["condensed"] = {self.names[i]: bool(states.amounts[0, i] > 0) for i in pure}
+        result["heat"] = self._heat()
+        if self.approach is not None:
+            result["approach"] = self._approach()
+        if problem.values is not None:
+            result["sweep"] = self._sweep().document()
+        constants = [(j, c) for j, c in enumerate(problem.constants)]
+        assumed = [
+            note
+            for j, constant in constants
+            for note in constant.assumed(self.temperature, constant_subject(self.reactions, j))
+        ]
+        if self.feed.phase == "liquid":
+            assumed.append(CONSTANT_DENSITY)
+        sources = self._sources()
+        told = () if self.approach is None else self.approach[1]
+        notes = (*edge.read_notes, *self.reached.notes, *told, SCREENING)
+        return Answer(
+            result=result,
+            notes=edge.notes(notes),
+            assumed=edge.notes((*edge.read_assumed, *assumed)),
+            method=METHOD + self._gas_words(),
+            data=f"{ATOMIC_WEIGHTS}; {PACKAGED}" if sources else ATOMIC_WEIGHTS,
+            properties=sources or None,
+            table=self._table,
+            page=self._page,
+        )
+
+    def _number(self, value: float, dimension: str) -> Json | None:
+        known = _finite(value)
+        return None if known is None else self.edge.number(known, dimension)
+
+    def _inlet_volume(self) -> float | None:
+        own = self.feed.volumetric_flow
+        if own is None:
+            return None
+        ratio = self.reached.compressibility_of_feed / self.feed.compressibility
+        return float(own) * (ratio if self.feed.phase == "gas" else 1.0)
+
+    def _stream(
+        self,
+        flows: FloatArray,
+        temperature: float | None,
+        pressure: float | None,
+        z: float,
+        volume: float | None,
+    ) -> Json:
+        return write_stream(
+            self.edge,
+            self.names,
+            flows,
+            self.feed.in_phase,
+            batch=self.feed.batch,
+            volume=volume if self._volume_known() else None,
+            temperature=temperature,
+            pressure=pressure,
+            compressibility=z,
+            fractions=not self.feed.solvent_unknown,
+        )
+
+    def _volume_known(self) -> bool:
+        return self.feed.phase == "gas" or self.feed.volumetric_flow is not None
+
+    def _extents(self) -> Json:
+        reactions = self.reactions
+        if reactions.rank < len(reactions.reactions):
+            return dict.fromkeys(self.ids)
+        each = self.states.extents[0].tolist()
+        dimension = self.words.flow_dimension
+        return {id_: self.edge.number(x, dimension) for id_, x in zip(self.ids, each, strict=True)}
+
+    def _constants(self) -> Json:
+        stated = self.problem.stated_constants
+        t = np.array([self.temperature])
+        told: Json = {}
+        for j, (id_, constant) in enumerate(zip(self.ids, self.problem.constants, strict=True)):
+            form, subject = constant.constant, constant_subject(self.reactions, j)
+            total = coefficient_sum(self.reactions.nu[j], self.feed.in_phase)
+            unit = spell(expected_unit_parts(constant.kind, total)) or "1"
+            ln = float(np.broadcast_to(form.ln_at(t, subject), t.shape)[0])
+            ln_value = ln - math.log(find_unit(unit).factor)
+            value = math.exp(ln_value) if abs(ln_value) < LARGEST_EXPONENT else None
+            told[id_] = {
+                "value": value,
+                "unit": unit,
+                "natural_logarithm": self.edge.number(
+                    float(stated.one_ln_k(j, t)[0]), "dimensionless"
+                ),
+                "from": FORMS[type(form)],
+            }
+            if self.feed.phase == "gas" and constant.kind == "thermodynamic" and total:
+                told[id_]["standard_pressure"] = self.edge.number(
+                    constant.standard_pressure, "pressure"
+                )
+            if isinstance(form, ReactionProperties | LnCorrelation):
+                heat = float(form.enthalpy(self.temperature))
+                told[id_]["enthalpy_of_reaction"] = self.edge.number(heat, "molar_energy")
+            elif isinstance(form, VantHoff):
+                told[id_]["enthalpy_of_reaction"] = self.edge.number(
+                    float(form.enthalpy), "molar_energy"
+                )
+        return told
+
+    def _heat(self) -> Json | None:
+        heat = self.reached.heat
+        if heat is None:
+            return None
+        told: Json = {}
+        if self.problem.hold.startswith("temperature"):
+            dimension = "energy" if self.feed.batch else "power"
+            if self.question.per_mole_of_key:
+                dimension = "molar_energy"
+            told["duty"] = self._number(heat[0], dimension)
+        elif self.feed.temperature is not None:
+            told["adiabatic_rise"] = self.edge.number(
+                self.temperature - self.feed.temperature, "temperature_difference"
+            )
+        return told
+
+    def _approach(self) -> Json:
+        assert self.approach is not None
+        edge = self.edge
+        told: Json = {}
+        for id_, found in zip(self.ids, self.approach[0], strict=True):
+            if found is None:
+                told[id_] = None
+                continue
+            ratio = found.ln_quotient_over_constant
+            told[id_] = {
+                "approach": edge.uncertain(found.approach, found.u, "temperature_difference"),
+                "equilibrium_temperature": edge.uncertain(
+                    found.equilibrium_temperature, found.equilibrium_temperature_u, "temperature"
+                ),
+                "quotient_over_constant": edge.uncertain(
+                    math.exp(ratio), math.exp(ratio) * found.ln_quotient_u, "dimensionless"
+                )
+                if abs(ratio) < LARGEST_EXPONENT
+                else None,
+            }
+        return told
+
+    def _sources(self) -> Json:
+        used: dict[str, StandardProperties] = {}
+        for constant in self.problem.constants:
+            if isinstance(constant.constant, ReactionProperties):
+                used |= {p.substance: p for p in constant.constant.properties}
+        if self.problem.properties is not None and self.reached.heat is not None:
+            used = {p.substance: used.get(p.substance, p) for p in self.problem.properties} | used
+        told = write_sources(self.edge, used.values())
+        if self.question.gas is not None:
+            for name, (entry, constants) in self.question.gas.constants.items():
+                told.setdefault(name, {"phase": "gas"}).update(
+                    write_critical(self.edge, entry, constants)
+                )
+        return told
+
+    def _gas_words(self) -> str:
+        if self.question.gas is None:
+            return ""
+        return f"; fugacities and volumes by {EQUATIONS[self.question.gas_model]}"
+
+    def _sweep(self) -> Table:
+        """Return the states of the sweep, a row each; None where there is no answer."""
+        states, edge = self.states, self.edge
+        flow = edge.scales[self.words.flow_dimension]
+        columns: dict[str, list[Any]] = {}
+        units: dict[str, str] = {}
+        for name, values in (
+            ("temperature", states.temperature),
+            ("pressure", states.pressure),
+        ):
+            scale = edge.scales[name]
+            columns[name] = _cells((values[1:] - scale.offset) / scale.factor)
+            units[name] = scale.unit
+        columns["conversion"] = _cells(self.reached.conversion[1:])
+        if self.reactions.rank == len(self.ids):
+            for j, id_ in enumerate(self.ids):
+                columns[f"extent {id_}"] = _cells(states.extents[1:, j] / flow.factor)
+                units[f"extent {id_}"] = flow.unit
+        inside = self.feed.in_phase
+        amounts = states.amounts[1:]
+        total = amounts[:, inside].sum(axis=1)
+        for i, name in enumerate(self.names):
+            if inside[i] and not self.feed.solvent_unknown:
+                columns[f"mole fraction {name}"] = _cells(amounts[:, i] / total)
+            else:
+                columns[f"{self.words.flow} {name}"] = _cells(amounts[:, i] / flow.factor)
+                units[f"{self.words.flow} {name}"] = flow.unit
+        if self.question.gas is not None:
+            columns["compressibility"] = _cells(states.compressibility[1:])
+        return Table(columns, units)
+
+    def _table(self) -> Table:
+        """Return the sweep, or else the composition, a row for each substance."""
+        return self._composition() if self.problem.values is None else self._sweep()
+
+    def _composition(self) -> Table:
+        flow = self.edge.scales[self.words.flow_dimension]
+        amounts, inside = self.states.amounts[0], self.feed.in_phase
+        fractions = np.where(inside, amounts, np.nan) / amounts[inside].sum()
+        if self.feed.solvent_unknown:
+            fractions = np.full_like(fractions, np.nan)
+        word = self.words.flow
+        columns = {
+            "substance": list(self.names),
+            f"inlet {word}": (self.feed.flows / flow.factor).tolist(),
+            f"outlet {word}": (amounts / flow.factor).tolist(),
+            "mole fraction": _cells(fractions),
+        }
+        return Table(columns, {f"inlet {word}": flow.unit, f"outlet {word}": flow.unit})
+
+    def _page(self) -> Page:
+        edge, problem = self.edge, self.problem
+        key = self.names[problem.key]
+        t = edge.number(self.temperature, "temperature")
+        p = self._number(self.states.pressure[0], "pressure")
+        at = told(t) + ("" if p is None else f" and {told(p)}")
+        conversion = float(self.reached.conversion[0])
+        numbers: list[tuple[str, Json | None]] = [
+            (f"conversion of {key}", edge.number(conversion, "dimensionless")),
+            ("temperature", t),
+            ("pressure", p),
+        ]
+        heat = self._heat()
+        for name, words in (
+            ("duty", "heat supplied (below zero: removed)"),
+            ("adiabatic_rise", "adiabatic rise"),
+        ):
+            if heat is not None and name in heat:
+                numbers.append((words, heat[name]))
+        if self.approach is not None:
+            numbers += [
+                (f"approach of {id_}", None if of is None else of["approach"])
+                for id_, of in self._approach().items()
+            ]
+        plots = self._plots() if problem.values is not None else ()
+        return Page(
+            title=f"Equilibrium of {' and '.join(self.ids)}",
+            verdict=f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %.",
+            numbers=tuple(numbers),
+            plots=plots,
+            tables=((f"Composition at {at}", self._composition()),),
+        )
+
+    def _plots(self) -> tuple[Plot, ...]:
+        table, over = self._sweep(), self.problem.over
+        assert over is not None
+        x = table.columns[over]
+        x_label = f"{over} [{table.units[over]}]"
+        y = table.columns["conversion"]
+        key = self.names[self.problem.key]
+        fractions = [name for name in table.columns if name.startswith("mole fraction ")]
+        plots = [
+            Plot(
+                f"Conversion of {key} against {over}",
+                x_label,
+                f"conversion of {key}",
+                (Curve(key, x, y),),
+                _course(f"the equilibrium conversion of {key}", y, x, table.units[over]),
+                table,
+            )
+        ]
+        if fractions:
+            largest = max(fractions, key=lambda name: max(v or 0.0 for v in table.columns[name]))
+            name = largest.removeprefix("mole fraction ")
+            plots.append(
+                Plot(
+                    f"Composition against {over}",
+                    x_label,
+                    "mole fraction",
+                    tuple(
+                        Curve(f.removeprefix("mole fraction "), x, table.columns[f])
+                        for f in fractions
+                    ),
+                    _course(
+                        f"of {len(fractions)} substances {name} comes to the largest share; its"
+                        " mole fraction",
+                        table.columns[largest],
+                        x,
+                        table.units[over],
+                    ),
+                    Table(
+                        {n: table.columns[n] for n in (over, *fractions)},
+                        {over: table.units[over]},
+                    ),
+                )
+            )
+        return tuple(plots)
+
+
+def _finite(value: Any) -> float | None:
+    return float(value) if np.isfinite(value) else None
+
+
+def _cells(values: FloatArray) -> list[float | None]:
+    return [value if math.isfinite(value) else None for value in values.tolist()]
+
+
+def _course(what: str, y: Sequence[float | None], x: Sequence[float | None], unit: str) -> str:
+    """Say how a curve runs, for who cannot see it."""
+    there = [(a, b) for a, b in zip(x, y, strict=True) if a is not None and b is not None]
+    if not there:
+        return f"{what[0].upper()}{what[1:]} is not known anywhere on the sweep."
+    (x0, y0), (x1, y1) = there[0], there[-1]
+    high = max(there, key=lambda point: point[1])
+    told = (
+        f"{what[0].upper()}{what[1:]} goes from {y0:.4g} at {x0:.5g} {unit} to {y1:.4g} at"
+        f" {x1:.5g} {unit}"
+    )
+    if high[1] > 1.001 * max(y0, y1) + 1e-12:
+        told += f", with {high[1]:.4g} at {high[0]:.5g} {unit} as the most"
+    return f"{told}."
