@@ -249,7 +249,7 @@ def beyond_range(
                     },
                 )
             )
-        elif not (cp.at(t) > 0).all():
+        elif p.sources["heat_capacity"] == STATED and not (cp.at(t) > 0).all():
             faults.append(
                 Fault(
                     "impossible-value",
