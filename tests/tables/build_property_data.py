@@ -22,7 +22,8 @@ Rules, of each phase:
   witness. A table of NIST-JANAF becomes a polynomial from T^-2 to T^4 between 200, 1000 and
   3000 K, by least squares on its C_p, H and S together, without the rows that contradict their
   neighbours; one of a condensed phase that has too sharp a peak for that becomes straight lines
-  from row to row, with what H gains beside them as heats of transition.
+  from row to row that have its gains of H and S, or, where rows are close, its C_p and the rest of
+  what H gains as heats of transition.
 - A phase without enthalpy of formation is left out; without the others it is kept, for the caller
   to complete. So is a condensed one left out whose enthalpy is the CRC Handbook's, where that
   handbook's gas is off the gas taken by more than 3 kJ/mol: the two would make a wrong heat of
@@ -379,17 +380,30 @@ def stretches(table: Table, keep: np.ndarray) -> list[Stretch]:
     return [stretch for stretch in found if stretch[1] > stretch[0]]
 
 
+WIDE = 60.0
+"""K; between rows farther apart a line of C_p follows from what H and S gain."""
+
+
 def chords(table: Table, keep: np.ndarray) -> tuple[Piece, ...] | None:
     """Straight lines from row to row of a condensed phase; H is that of the table at each."""
     rows = [i for i in np.flatnonzero(keep) if table.t[i] != 300.0]
     t, cp, h = table.t, table.cp, table.h
     made: list[Piece] = []
+    lines: dict[int, tuple[float, float]] = {}
     reached = 0.0
     for i, j in itertools.pairwise(rows):
         if t[j] - t[i] < 0.5:
             continue
         slope = (cp[j] - cp[i]) / (t[j] - t[i])
-        line = (float(f"{cp[i] - slope * t[i]:.8g}"), float(f"{slope:.8g}"))
+        if t[j] - t[i] > WIDE:
+            # Here the gains of H and S say more than the values of C_p at the ends.
+            a, b, ratio = t[i], t[j], math.log(t[j] / t[i])
+            both = np.array([[b - a, (b * b - a * a) / 2], [ratio, b - a]])
+            level, rise = np.linalg.solve(both, [h[j] - h[i], table.s[j] - table.s[i]])
+            if min(level + rise * a, level + rise * b) > 0:
+                lines[i] = (float(level), float(rise))
+        level, rise = lines.get(i, (cp[i] - slope * t[i], slope))
+        line = (float(f"{level:.8g}"), float(f"{rise:.8g}"))
         step = round(h[i] - reached, 1) if t[i] > T0 else 0.0
         piece = Piece(float(t[i]), float(t[j]), 0, line, step)
         if t[i] >= T0:
