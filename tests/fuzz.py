@@ -1365,15 +1365,16 @@ class Maker:
     def state_properties(self, made: dict[str, Any], names: list[str]) -> None:
         """State properties of some substances, in a request's own declaration of them."""
         rnd = self.rnd
-        species = made.setdefault("species", {})
         for name in names:
             if self.chance(0.5):
                 continue
-            said = species.setdefault(name, {})
-            said["enthalpy_of_formation"] = rnd.choice(["-110 kJ/mol", "0 J/mol", "1e9 kJ/mol"])
+            said = made.setdefault("species", {}).setdefault(name, {})
+            said["enthalpy_of_formation"] = rnd.choice(
+                (5 * ["-110 kJ/mol", "0 J/mol"]) + ["1e9 kJ/mol"]
+            )
             third = rnd.choice(["entropy", "entropy", "gibbs_of_formation"])
             said[third] = {
-                "entropy": rnd.choice(["200 J/(mol K)", "50 cal/(mol K)", "-1 J/(mol K)"]),
+                "entropy": rnd.choice((5 * ["200 J/(mol K)", "50 cal/(mol K)"]) + ["-1 J/(mol K)"]),
                 "gibbs_of_formation": rnd.choice(["-90 kJ/mol", "20 kcal/mol"]),
             }[third]
             said["heat_capacity"] = rnd.choice(
@@ -1389,9 +1390,9 @@ class Maker:
                     },
                 ]
             )
-            if self.chance(0.2):
+            if self.chance(0.1):
                 said["registry_number"] = rnd.choice(["630-08-0", "7732-18-5", "106-97-8"])
-            if self.chance(0.2):
+            if self.chance(0.1):
                 said["name"] = rnd.choice(["water", "isobutane", "x", " butane "])
 
     def volume(self) -> tuple[Json, float | None]:

@@ -205,13 +205,11 @@ class HeatCapacity:
 
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
         """H(T) - H(298.15 K), J/mol, shape of ``temperature`` (K)."""
-        t = np.asarray(temperature, dtype=float)
-        return self._from_lowest(t)[0] - self._at_reference[0]
+        return self._integral(np.asarray(temperature, dtype=float), 0) - self._at_reference[0]
 
     def entropy(self, temperature: float | FloatArray) -> FloatArray:
         """S(T) - S(298.15 K), J/(mol K), shape of ``temperature`` (K)."""
-        t = np.asarray(temperature, dtype=float)
-        return self._from_lowest(t)[1] - self._at_reference[1]
+        return self._integral(np.asarray(temperature, dtype=float), 1) - self._at_reference[1]
 
     def beyond(self, temperature: float | FloatArray) -> float:
         """How far the farthest temperature lies outside the range, K; 0 inside."""
@@ -222,40 +220,35 @@ class HeatCapacity:
 
     @cached_property
     def _at_reference(self) -> tuple[float, float]:
-        h, s = self._from_lowest(np.array(REFERENCE_TEMPERATURE))
-        return float(h), float(s)
+        t = np.array(REFERENCE_TEMPERATURE)
+        return float(self._integral(t, 0)), float(self._integral(t, 1))
 
     @cached_property
-    def _starts(self) -> list[tuple[float, float]]:
-        """Enthalpy and entropy at the lower end of each piece, counted from the first."""
-        found = [(0.0, 0.0)]
-        for piece, following in zip(self.pieces, self.pieces[1:], strict=False):
-            ends = np.array([piece.lowest, following.lowest])
-            h, s = (np.diff(f(ends))[0] for f in (piece.form.enthalpy, piece.form.entropy))
-            latent = following.latent
-            found.append(
-                (
-                    found[-1][0] + float(h) + latent,
-                    found[-1][1] + float(s) + latent / following.lowest,
-                )
-            )
+    def _offsets(self) -> list[tuple[float, float]]:
+        """What makes each piece's antiderivatives go on where those of the piece before end."""
+        found: list[tuple[float, float]] = []
+        h = s = 0.0
+        for k, piece in enumerate(self.pieces):
+            start, form = np.array(piece.lowest), piece.form
+            if k:
+                before = self.pieces[k - 1].form
+                h = float(before.enthalpy(start)) + found[-1][0] + piece.latent
+                s = float(before.entropy(start)) + found[-1][1] + piece.latent / piece.lowest
+            found.append((h - float(form.enthalpy(start)), s - float(form.entropy(start))))
         return found
 
-    def _from_lowest(self, t: FloatArray) -> tuple[FloatArray, FloatArray]:
+    def _integral(self, t: FloatArray, which: int) -> FloatArray:
+        """Integral from the lowest temperature of C_p (0) or of C_p/T (1)."""
         inside = np.clip(t, self.lowest, self.highest)
 
-        def integral(k: int, x: FloatArray, which: int) -> FloatArray:
-            piece, start = self.pieces[k], self._starts[k][which]
-            f = piece.form.entropy if which else piece.form.enthalpy
-            return f(x) - f(np.array(piece.lowest)) + start
+        def of_piece(k: int, x: FloatArray) -> FloatArray:
+            form = self.pieces[k].form
+            return (form.entropy(x) if which else form.enthalpy(x)) + self._offsets[k][which]
 
-        h = self._by_piece(inside, lambda k, x: integral(k, x, 0))
-        s = self._by_piece(inside, lambda k, x: integral(k, x, 1))
+        result = self._by_piece(inside, of_piece)
         if (inside != t).any():
-            cp = self.at(t)
-            h = h + cp * (t - inside)
-            s = s + cp * np.log(t / inside)
-        return h, s
+            result = result + self.at(t) * (np.log(t / inside) if which else t - inside)
+        return result
 
     def _by_piece(self, t: FloatArray, f: _OfPiece) -> FloatArray:
         if len(self.pieces) == 1:

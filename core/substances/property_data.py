@@ -12,8 +12,11 @@ How well they hold, as that script and the tests found:
 ==================================  =============================================================
 heat capacity of gases              TRC equation against NIST-JANAF at 298 to 1500 K, 107
                                     substances: median 0.06 %, nine in ten within 2.4 %
-polynomials of NIST-JANAF           against its own rows from 200 to 3000 K: C_p, H/T and S within
-                                    0.1 J/(mol K), half of them within 0.004
+polynomials of NIST-JANAF           against their rows from 200 to 3000 K, 978 tables: G/T within
+                                    0.05 J/(mol K), 0.6 % of K, in the median 0.001, but for single
+                                    rows that contradict their neighbours
+log10 K of 54 reactions             against NIST-JANAF from 298 to 2000 K: within 0.003, or 0.001 a
+                                    substance that reacts, where its enthalpies are taken
 ==================================  =============================================================
 """
 

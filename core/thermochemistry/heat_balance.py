@@ -60,6 +60,24 @@ class HeatsOfReaction:
         h = np.array([p.enthalpy for p in properties])
         return cls(nu, nu @ h, np.full(len(nu), REFERENCE_TEMPERATURE), _capacities(properties))
 
+    def stating(self, reaction: int, heat: float, of: int, at: float) -> HeatsOfReaction:
+        """Return these with one reaction's heat as stated.
+
+        Parameters
+        ----------
+        reaction : int
+        heat : float
+            J per mole of ``of`` consumed or formed; below zero where heat is given off.
+        of : int
+            A substance of the reaction.
+        at : float
+            K.
+        """
+        enthalpies, temperatures = self.enthalpies.copy(), self.at.copy()
+        enthalpies[reaction] = heat * abs(self.nu[reaction, of])
+        temperatures[reaction] = at
+        return HeatsOfReaction(self.nu, enthalpies, temperatures, self.heat_capacities)
+
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
         """J per mole of extent, shape (..., R), at temperatures of shape (...), K."""
         t = np.asarray(temperature, dtype=float)

@@ -140,9 +140,9 @@ class ReactionProperties:
         return (
             Note(
                 "equilibrium-constant-from-properties",
-                "ln K is {ln_k} at {temperature} (gases at 1 bar), and the enthalpy of reaction"
-                " {enthalpy} per mole of extent, from enthalpies of formation, entropies and heat"
-                " capacities of {names}",
+                "ln K is {ln_k} at {temperature} (ideal gases at 1 bar), and the enthalpy of"
+                " reaction {enthalpy} per mole of extent, from enthalpies of formation, entropies"
+                " and heat capacities of {names}",
                 subject=subject,
                 facts={
                     "ln_k": f"{float(self.ln_at(at, subject)):.6g}",
@@ -249,7 +249,7 @@ def beyond_range(
                     },
                 )
             )
-        elif not (cp.at(t) > 0).all():
+        elif p.sources["heat_capacity"] == STATED and not (cp.at(t) > 0).all():
             faults.append(
                 Fault(
                     "impossible-value",

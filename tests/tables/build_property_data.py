@@ -22,14 +22,16 @@ Rules, of each phase:
   witness. A table of NIST-JANAF becomes a polynomial from T^-2 to T^4 between 200, 1000 and
   3000 K, by least squares on its C_p, H and S together, without the rows that contradict their
   neighbours; one of a condensed phase that has too sharp a peak for that becomes straight lines
-  from row to row, with what H gains beside them as heats of transition.
+  from row to row that have its gains of H and S, or, where rows are close, its C_p and the rest of
+  what H gains as heats of transition.
 - A phase without enthalpy of formation is left out; without the others it is kept, for the caller
   to complete. So is a condensed one left out whose enthalpy is the CRC Handbook's, where that
   handbook's gas is off the gas taken by more than 3 kJ/mol: the two would make a wrong heat of
   evaporation; and what only the handbook has, where its own three values deny the formula. Of two
   numbers with one formula, phase and (within 1 kJ/mol and 2 J/(mol K), of gases 0.1 and 0.2) one
   set of values the one with more of NIST-JANAF is kept, and the other leads to it. What only the
-  Active Thermochemical Tables have, without a heat capacity, is left out.
+  Active Thermochemical Tables have, without a heat capacity, is left out; and so is a condensed
+  phase, or its entropy, that would make a senseless evaporation.
 - The spread of an enthalpy or entropy is the largest difference from another collection.
 
 Run from the root of the repository, in an environment of its own::
@@ -378,17 +380,30 @@ def stretches(table: Table, keep: np.ndarray) -> list[Stretch]:
     return [stretch for stretch in found if stretch[1] > stretch[0]]
 
 
+WIDE = 60.0
+"""K; between rows farther apart a line of C_p follows from what H and S gain."""
+
+
 def chords(table: Table, keep: np.ndarray) -> tuple[Piece, ...] | None:
     """Straight lines from row to row of a condensed phase; H is that of the table at each."""
-    rows = [i for i in np.flatnonzero(keep) if table.t[i] not in (250.0, 300.0, 350.0)]
+    rows = [i for i in np.flatnonzero(keep) if table.t[i] != 300.0]
     t, cp, h = table.t, table.cp, table.h
     made: list[Piece] = []
+    lines: dict[int, tuple[float, float]] = {}
     reached = 0.0
     for i, j in itertools.pairwise(rows):
         if t[j] - t[i] < 0.5:
             continue
         slope = (cp[j] - cp[i]) / (t[j] - t[i])
-        line = (float(f"{cp[i] - slope * t[i]:.8g}"), float(f"{slope:.8g}"))
+        if t[j] - t[i] > WIDE:
+            # Here the gains of H and S say more than the values of C_p at the ends.
+            a, b, ratio = t[i], t[j], math.log(t[j] / t[i])
+            both = np.array([[b - a, (b * b - a * a) / 2], [ratio, b - a]])
+            level, rise = np.linalg.solve(both, [h[j] - h[i], table.s[j] - table.s[i]])
+            if min(level + rise * a, level + rise * b) > 0:
+                lines[i] = (float(level), float(rise))
+        level, rise = lines.get(i, (cp[i] - slope * t[i], slope))
+        line = (float(f"{level:.8g}"), float(f"{rise:.8g}"))
         step = round(h[i] - reached, 1) if t[i] > T0 else 0.0
         piece = Piece(float(t[i]), float(t[j]), 0, line, step)
         if t[i] >= T0:
@@ -405,8 +420,13 @@ MISPRINT = 0.1
 def fitted(table: Table) -> tuple[Piece, ...] | None:
     """Polynomials of a table; None where none describes it."""
     keep = (table.t >= COLDEST) & (table.t <= min(HOTTEST, table.end))
+    # Below a transition that lies under 298.15 K nobody runs a reactor.
+    jumps = table.t[1:][np.diff(table.t) < 0.01]
+    keep &= table.t >= max([0.0, *(t for t in jumps if t < T0)])
+    for k in np.flatnonzero((np.diff(table.t) < 0.01) & (table.t[1:] < T0)):
+        keep[k] = False
     s = table.s - table.s[table.t == T0][0]
-    within = keep.copy()
+    within = keep & (table.t >= T0)
     for _ in range(3):
         pieces = stretches(table, keep)
         if T0 not in table.t[keep] or not any(lo <= T0 <= hi for lo, hi, *_ in pieces):
@@ -768,6 +788,33 @@ def spread(chosen: tuple[float, str], said: dict[str, float], order: tuple[str, 
     return f"{max(others):.6g}" if others else ""
 
 
+LEAST_HEAT = {"liquid": 3000.0, "solid": 14000.0}
+MOST_HEAT, ENTROPIES_OF_EVAPORATION = 150000.0, (50.0, 220.0)
+"""J/mol and J/(mol K) at 298.15 K; of evaporation, the upper ones where there is carbon."""
+
+
+def with_sensible_evaporation(rows: list[dict[str, str]]) -> list[dict[str, str]]:
+    """Rows without condensed phases, or their entropies, that no gas could come from so."""
+    gases = {row["registry_number"]: row for row in rows if row["phase"] == "gas"}
+    kept = []
+    for row in rows:
+        gas = gases.get(row["registry_number"])
+        if gas is not None and row["phase"] != "gas":
+            heat = float(gas["enthalpy"]) - float(row["enthalpy"])
+            organic = row["phase"] == "liquid" and re.search("C(?![a-z])", row["formula"])
+            tabled = row["enthalpy_source"] == JANAF
+            if heat < LEAST_HEAT[row["phase"]] or (organic and heat > MOST_HEAT and not tabled):
+                continue
+            if organic and "entropy" in row and "entropy" in gas:
+                gained = float(gas["entropy"]) - float(row["entropy"])
+                low, high = ENTROPIES_OF_EVAPORATION
+                if not low < gained < high:
+                    for name in ("entropy", "entropy_source", "entropy_spread"):
+                        del row[name]
+        kept.append(row)
+    return kept
+
+
 def without_twins(rows: list[dict[str, str]]) -> tuple[list[dict[str, str]], dict[str, str]]:
     """Rows without those of a second number for one substance, and where each such number leads."""
     kept: dict[tuple[str, str], list[dict[str, str]]] = defaultdict(list)
@@ -924,7 +971,7 @@ def build() -> tuple[list[dict[str, str]], list[dict[str, str]], dict[str, float
                 "heat_capacity_source": cp[1],
             }
         rows.append(row)
-    phases, leads = without_twins(rows)
+    phases, leads = without_twins(with_sensible_evaporation(rows))
     formulas = {row["registry_number"]: row.pop("formula") for row in phases}
     twins: dict[str, list[str]] = defaultdict(list)
     for number, other in leads.items():

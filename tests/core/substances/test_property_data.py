@@ -247,6 +247,50 @@ def test_the_tables_stay_small():
     assert {len(row) for row in csv.reader(lines.splitlines())} == {10}
 
 
+def test_evaporation_makes_sense_wherever_both_phases_are_known():
+    compared = 0
+    for entry in ENTRIES:
+        gas = entry.phases.get("gas")
+        liquid = entry.phases.get("liquid")
+        if gas is None or liquid is None:
+            continue
+        assert gas.enthalpy - liquid.enthalpy > 3e3, entry.name
+        if ("C", 1) in entry.atoms or gas.entropy is None or liquid.entropy is None:
+            continue
+        assert gas.entropy - liquid.entropy > 50.0, entry.name
+        compared += 1
+    assert compared > 100
+
+
+def test_the_polynomials_give_back_the_tables_that_they_were_made_of():
+    pytest.importorskip("chemicals", reason="a library behind the tables is absent")
+    pytest.importorskip("janaf", reason="a library behind the tables is absent")
+    sys.path.insert(0, str(ROOT / "tests" / "tables"))
+    try:
+        import build_property_data as build
+    finally:
+        sys.path.pop(0)
+    misfits = []
+    numbers = {entry.registry_number: entry for entry in ENTRIES}
+    for number, kind, made in build.registry_numbers(build.tables()):
+        entry = numbers.get(number)
+        tabled = None if entry is None else entry.phases.get(build.PHASES[kind])
+        if tabled is None or tabled.heat_capacity_source != "nist-janaf-1998":
+            continue
+        cp = tabled.heat_capacity
+        assert cp is not None
+        rows = (made.t >= cp.lowest) & (made.t <= cp.highest)
+        t = made.t[rows]
+        entropy = made.s[rows] - made.s[made.t == 298.15][0]
+        of_gibbs = made.h[rows] / t - entropy
+        misfits.append(np.sort(np.abs(cp.enthalpy(t) / t - cp.entropy(t) - of_gibbs)))
+    # J/(mol K) of the Gibbs energy over T, but for the two rows that may have been left out.
+    worst = np.array([row[-3] for row in misfits if len(row) > 4])
+    assert len(worst) > 700
+    assert np.median(worst) < 0.003
+    assert worst.max() < 0.05
+
+
 def test_the_script_writes_the_packaged_tables(tmp_path):
     chemicals = pytest.importorskip("chemicals", reason="a library behind the tables is absent")
     pytest.importorskip("janaf", reason="a library behind the tables is absent")

@@ -61,6 +61,16 @@ def test_an_enthalpy_of_reaction_is_one_whatever_temperature_it_is_stated_at():
     assert heats.enthalpy(t).shape == (3, 2)
 
 
+def test_a_heat_stated_per_mole_of_a_substance_is_brought_to_the_extent():
+    reactions, _, heats = account("2 SO2 + O2 <=> 2 SO3")
+    per_dioxide = float(heats.enthalpy(700.0)[0]) / 2.0
+    stated = heats.stating(0, per_dioxide, reactions.index("SO2"), 700.0)
+    t = np.array([298.15, 500.0, 900.0])
+    assert_allclose(stated.enthalpy(t), heats.enthalpy(t), rtol=1e-12)
+    by_oxygen = heats.stating(0, 2 * per_dioxide, reactions.index("O2"), 700.0)
+    assert_allclose(by_oxygen.enthalpy(t), heats.enthalpy(t), rtol=1e-12)
+
+
 @given(
     st.floats(0.0, 0.9),
     st.floats(-0.5, 0.5),
