@@ -73,7 +73,8 @@ class EquilibriumProblem:
     pressure : ndarray, shape (N,), or None
         Pa, of a gas with a pressure hold. A liquid needs none.
     volume : ndarray, shape (N,), or None
-        m3, with a volume hold, and of every liquid: its density is constant.
+        m3, with a volume hold, and of every liquid, whose density is constant; a liquid in
+        which no reaction changes the number of moles needs none.
     energy : ndarray, shape (N,), or None
         Enthalpy or internal energy to be kept, in J, with the heat supplied in it.
     enthalpies : Enthalpies or None
@@ -266,11 +267,16 @@ class _Solver:
         per_volume = GAS_CONSTANT * temperature / self.volume[rows]
         return np.log(per_volume / mixture.standard_pressure)
 
+    def of_units(self, temperature: FloatArray, rows: IntArray) -> FloatArray:
+        """Return what that adds to ln Q of each reaction, (m, R); nothing where moles stay."""
+        unit = self.ln_unit(temperature, rows)[:, None]
+        return np.where(self.orders == 0, 0.0, unit * self.orders)
+
     def at(self, temperature: FloatArray, rows: IntArray) -> _Point:
         """Return the equilibrium of some samples at a temperature each."""
         problem = self.problem
         ln_k = self.ln_constants(temperature, rows)
-        ideal = ln_k - self.ln_unit(temperature, rows)[:, None] * self.orders
+        ideal = ln_k - self.of_units(temperature, rows)
         task = Task(self.space, self.in_mixture, self.per_total, ideal, problem.feed[rows])
         if problem.mixture.equation is None or problem.mixture.phase == "liquid":
             found = find(task, self.last.samples(rows))
@@ -333,7 +339,14 @@ class _Solver:
         pressure = self.pressure_at(temperature, rows, found.ln_amounts)
         equation = self.problem.mixture.equation
         assert equation is not None
-        gas = equation.state(temperature, pressure, self.in_gas(found.ln_amounts))
+        inside = self.in_gas(found.ln_amounts)
+        gas = equation.state(temperature, pressure, inside)
+        if not self.per_total:
+            # At such a pressure another root is the stable one: one gas does not fill the volume.
+            filled = (
+                gas.compressibility * inside.sum(axis=1) * GAS_CONSTANT * temperature / pressure
+            )
+            settled &= np.abs(filled / self.volume[rows] - 1) < 1e-6
         return _Point(found, ln_gamma, gas, settled)
 
     def in_gas(self, ln_amounts: FloatArray) -> FloatArray:
@@ -444,7 +457,7 @@ class _Solver:
             "equilibrium-not-found",
             self.problem.subject,
             "no equilibrium was found at {temperature}; check the constants, and pressure or"
-            " volume, for values beyond sense",
+            " volume, for values beyond sense, and whether all of the gas can be a gas there",
             facts,
         )
 
@@ -517,9 +530,8 @@ class _Solver:
             most = inside.max(axis=1, keepdims=True)
             total = most + np.log(np.exp(inside - most).sum(axis=1, keepdims=True))
             ln_activity = np.where(self.in_mixture, ln_n - total, 0.0)
-        unit = np.where(self.in_mixture, self.ln_unit(temperature, rows)[:, None], 0.0)
-        ln_activity = ln_activity + unit + point.ln_gamma
-        ln_k = self.problem.constants.ln_k(temperature, rows)
+        ln_activity = ln_activity + point.ln_gamma
+        ln_k = self.problem.constants.ln_k(temperature, rows) - self.of_units(temperature, rows)
         terms = np.where(nu != 0, nu * ln_activity[:, None, :], 0.0)
         there = np.where(nu != 0, np.isfinite(ln_n)[:, None, :] | ~self.in_mixture, True)
         excess = np.where(there.all(axis=2), terms.sum(axis=2) - ln_k, np.nan)
