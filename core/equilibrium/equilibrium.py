@@ -22,6 +22,7 @@ from core.equilibrium.reaction_space import ReactionSpace, reaction_space
 from core.errors import Amount, Fault, Subject, refuse
 from core.numerics.roots import find_root
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation, GasState
 
 Hold = Literal["temperature-pressure", "temperature-volume", "enthalpy-pressure", "energy-volume"]
@@ -121,6 +122,8 @@ class Equilibrium:
         K, Pa, m3, -; pressure is NaN for a liquid, and volume where none was stated.
     ln_fugacity_coefficients : ndarray, shape (N, S)
         Zero for an ideal gas and for what is no gas.
+    may_condense : ndarray of bool, shape (N,)
+        A real gas out of which a liquid would form: the answer takes it as one gas.
     balance : ndarray, shape (N,)
         The largest error of what is conserved, relative to its terms.
     iterations : ndarray of int, shape (N,)
@@ -138,6 +141,7 @@ class Equilibrium:
     volume: FloatArray
     compressibility: FloatArray
     ln_fugacity_coefficients: FloatArray
+    may_condense: BoolArray
     balance: FloatArray
     iterations: IntArray
     faults: dict[int, Fault] = field(default_factory=dict)
@@ -473,6 +477,7 @@ class _Solver:
         iterations = np.zeros(count, dtype=np.intp)
         excess = np.full((count, len(nu)), np.nan)
         stopped: BoolArray = np.zeros((count, len(nu)), dtype=bool)
+        condenses: BoolArray = np.zeros(count, dtype=bool)
         if len(good):
             point = self.at(temperature[good], good)
             for at in np.flatnonzero(~point.settled).tolist():
@@ -490,6 +495,14 @@ class _Solver:
             if problem.mixture.phase == "gas" and self.per_total:
                 amount = self.in_gas(ln_n).sum(axis=1)
                 volume[good] = z[good] * amount * GAS_CONSTANT * temperature[good] / pressure[good]
+            if problem.mixture.equation is not None and point.gas is not None:
+                here = good[sound]
+                condenses[here] = would_condense(
+                    problem.mixture.equation,
+                    temperature[here],
+                    pressure[here],
+                    self.in_gas(ln_n[sound]),
+                )
             excess[good], stopped[good] = self.affinities(temperature[good], good, point)
             bad = good[~sound]
             for values in (ln_amounts, ln_phi, pressure, volume, z, excess):
@@ -513,6 +526,7 @@ class _Solver:
             volume,
             z,
             ln_phi,
+            condenses,
             share.max(axis=1, initial=0.0),
             iterations,
             self.faults,
