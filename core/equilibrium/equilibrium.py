@@ -22,6 +22,7 @@ from core.equilibrium.reaction_space import ReactionSpace, reaction_space
 from core.errors import Amount, Fault, Subject, refuse
 from core.numerics.roots import find_root
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation, GasState
 
 Hold = Literal["temperature-pressure", "temperature-volume", "enthalpy-pressure", "energy-volume"]
@@ -73,7 +74,8 @@ class EquilibriumProblem:
     pressure : ndarray, shape (N,), or None
         Pa, of a gas with a pressure hold. A liquid needs none.
     volume : ndarray, shape (N,), or None
-        m3, with a volume hold, and of every liquid: its density is constant.
+        m3, with a volume hold, and of every liquid, whose density is constant; a liquid in
+        which no reaction changes the number of moles needs none.
     energy : ndarray, shape (N,), or None
         Enthalpy or internal energy to be kept, in J, with the heat supplied in it.
     enthalpies : Enthalpies or None
@@ -120,6 +122,8 @@ class Equilibrium:
         K, Pa, m3, -; pressure is NaN for a liquid, and volume where none was stated.
     ln_fugacity_coefficients : ndarray, shape (N, S)
         Zero for an ideal gas and for what is no gas.
+    may_condense : ndarray of bool, shape (N,)
+        A real gas out of which a liquid would form: the answer takes it as one gas.
     balance : ndarray, shape (N,)
         The largest error of what is conserved, relative to its terms.
     iterations : ndarray of int, shape (N,)
@@ -137,6 +141,7 @@ class Equilibrium:
     volume: FloatArray
     compressibility: FloatArray
     ln_fugacity_coefficients: FloatArray
+    may_condense: BoolArray
     balance: FloatArray
     iterations: IntArray
     faults: dict[int, Fault] = field(default_factory=dict)
@@ -286,11 +291,16 @@ class _Solver:
         per_volume = GAS_CONSTANT * temperature / self.volume[rows]
         return np.log(per_volume / mixture.standard_pressure)
 
+    def of_units(self, temperature: FloatArray, rows: IntArray) -> FloatArray:
+        """Return what that adds to ln Q of each reaction, (m, R); nothing where moles stay."""
+        unit = self.ln_unit(temperature, rows)[:, None]
+        return np.where(self.orders == 0, 0.0, unit * self.orders)
+
     def at(self, temperature: FloatArray, rows: IntArray) -> _Point:
         """Return the equilibrium of some samples at a temperature each."""
         problem = self.problem
         ln_k = self.ln_constants(temperature, rows)
-        ideal = ln_k - self.ln_unit(temperature, rows)[:, None] * self.orders
+        ideal = ln_k - self.of_units(temperature, rows)
         task = Task(self.space, self.in_mixture, self.per_total, ideal, problem.feed[rows])
         if problem.mixture.equation is None or problem.mixture.phase == "liquid":
             found = find(task, self.last.samples(rows))
@@ -353,7 +363,14 @@ class _Solver:
         pressure = self.pressure_at(temperature, rows, found.ln_amounts)
         equation = self.problem.mixture.equation
         assert equation is not None
-        gas = equation.state(temperature, pressure, self.in_gas(found.ln_amounts))
+        inside = self.in_gas(found.ln_amounts)
+        gas = equation.state(temperature, pressure, inside)
+        if not self.per_total:
+            # At such a pressure another root is the stable one: one gas does not fill the volume.
+            filled = (
+                gas.compressibility * inside.sum(axis=1) * GAS_CONSTANT * temperature / pressure
+            )
+            settled &= np.abs(filled / self.volume[rows] - 1) < 1e-6
         return _Point(found, ln_gamma, gas, settled)
 
     def in_gas(self, ln_amounts: FloatArray) -> FloatArray:
@@ -464,7 +481,7 @@ class _Solver:
             "equilibrium-not-found",
             self.problem.subject,
             "no equilibrium was found at {temperature}; check the constants, and pressure or"
-            " volume, for values beyond sense",
+            " volume, for values beyond sense, and whether all of the gas can be a gas there",
             facts,
         )
 
@@ -480,6 +497,7 @@ class _Solver:
         iterations = np.zeros(count, dtype=np.intp)
         excess = np.full((count, len(nu)), np.nan)
         stopped: BoolArray = np.zeros((count, len(nu)), dtype=bool)
+        condenses: BoolArray = np.zeros(count, dtype=bool)
         if len(good):
             point = self.at(temperature[good], good)
             for at in np.flatnonzero(~point.settled).tolist():
@@ -497,6 +515,14 @@ class _Solver:
             if problem.mixture.phase == "gas" and self.per_total:
                 amount = self.in_gas(ln_n).sum(axis=1)
                 volume[good] = z[good] * amount * GAS_CONSTANT * temperature[good] / pressure[good]
+            if problem.mixture.equation is not None and point.gas is not None:
+                here = good[sound]
+                condenses[here] = would_condense(
+                    problem.mixture.equation,
+                    temperature[here],
+                    pressure[here],
+                    self.in_gas(ln_n[sound]),
+                )
             excess[good], stopped[good] = self.affinities(temperature[good], good, point)
             bad = good[~sound]
             for values in (ln_amounts, ln_phi, pressure, volume, z, excess):
@@ -522,6 +548,7 @@ class _Solver:
             volume,
             z,
             ln_phi,
+            condenses,
             share.max(axis=1, initial=0.0),
             iterations,
             self.faults,
@@ -539,9 +566,8 @@ class _Solver:
             most = inside.max(axis=1, keepdims=True)
             total = most + np.log(np.exp(inside - most).sum(axis=1, keepdims=True))
             ln_activity = np.where(self.in_mixture, ln_n - total, 0.0)
-        unit = np.where(self.in_mixture, self.ln_unit(temperature, rows)[:, None], 0.0)
-        ln_activity = ln_activity + unit + point.ln_gamma
-        ln_k = self.problem.constants.ln_k(temperature, rows)
+        ln_activity = ln_activity + point.ln_gamma
+        ln_k = self.problem.constants.ln_k(temperature, rows) - self.of_units(temperature, rows)
         terms = np.where(nu != 0, nu * ln_activity[:, None, :], 0.0)
         there = np.where(nu != 0, np.isfinite(ln_n)[:, None, :] | ~self.in_mixture, True)
         excess = np.where(there.all(axis=2), terms.sum(axis=2) - ln_k, np.nan)

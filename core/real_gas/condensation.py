@@ -29,6 +29,8 @@ def would_condense(
     amounts : ndarray, shape (N, S)
         Not all zero.
     """
+    if not len(temperature):
+        return np.zeros(0, dtype=bool)
     y = amounts / amounts.sum(axis=1, keepdims=True)
     state = equation.state(temperature, pressure, y)
     ln_fugacity = np.log(y) + state.ln_fugacity_coefficients

@@ -179,6 +179,20 @@ def test_a_liquid_by_concentrations():
     assert np.isnan(found.pressure[0])
 
 
+def test_a_liquid_of_unknown_volume_whose_moles_stay():
+    reactions = reaction_set(["C2H4O2 + C2H6O <=> C4H8O2 + H2O"])
+    of = problem(
+        reactions,
+        [{"C2H4O2": 1.0, "C2H6O": 1.0}],
+        [np.log(4.0)],
+        volume=np.nan,
+        phase="liquid",
+    )
+    found = solve_equilibrium(of)
+    assert_allclose(found.extents[0, 0], 2 / 3, rtol=1e-12)
+    assert_allclose(found.ln_quotient_over_constant, 0, atol=1e-12)
+
+
 @pytest.mark.parametrize("bad", [-1.0, np.nan, np.inf])
 def test_impossible_feeds(bad):
     reactions = reaction_set(REFORMING)

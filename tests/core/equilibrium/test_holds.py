@@ -4,6 +4,7 @@ from numpy.testing import assert_allclose
 from scipy.optimize import brentq
 
 from core.constants import GAS_CONSTANT as R
+from core.equilibrium.constants import KnownConstants
 from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
 from core.real_gas.cubic import CubicEquation
 from tests.core.equilibrium.cases import mixture, problem, reaction_set
@@ -162,6 +163,62 @@ def test_a_sample_of_real_gas_does_not_depend_on_its_batch():
             EquilibriumProblem(TWO, real, FEED[one], SULPHUR, temperature=t[one], pressure=p[one])
         )
         assert_allclose(alone.amounts[0], whole.amounts[i], rtol=1e-11)
+
+
+SHIFTED = reaction_set(["CH4 + H2O <=> CO + 3 H2", "CO + H2O <=> CO2 + H2"], ["N2"])
+CRITICAL = {  # K, bar, acentric factor; any data near the truth will do here
+    "CH4": (190.6, 46.0, 0.012), "H2O": (647.1, 220.6, 0.345), "CO": (132.9, 35.0, 0.048),
+    "H2": (33.2, 13.1, -0.216), "CO2": (304.2, 73.8, 0.224), "N2": (126.2, 34.0, 0.038),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("model", ["peng-robinson", "soave-redlich-kwong"])
+@pytest.mark.parametrize("closed", [False, True])
+def test_random_real_gases_to_a_thousand_bar(model, closed):
+    t_c, p_c, omega = np.array([CRITICAL[name] for name in SHIFTED.names]).T
+    equation = CubicEquation(model, t_c, p_c * 1e5, omega)
+    rng = np.random.default_rng(3)
+    count = 150
+    feed = 10 ** rng.uniform(-4, 0, (count, len(SHIFTED.names)))
+    t, p = rng.uniform(650, 1500, count), 10 ** rng.uniform(5, 8, count)
+    ln_k = rng.uniform(-10, 10, (count, 2)) * np.log(10)
+    volume = feed.sum(axis=1) * R * t / p
+    found = solve_equilibrium(
+        EquilibriumProblem(
+            SHIFTED,
+            mixture(SHIFTED, equation=equation),
+            feed,
+            KnownConstants(ln_k),
+            hold="temperature-volume" if closed else "temperature-pressure",
+            temperature=t,
+            pressure=None if closed else p,
+            volume=volume if closed else None,
+        )
+    )
+    assert not found.faults
+    state = equation.state(t, found.pressure, found.amounts)
+    ln_y = found.ln_amounts - np.log(found.amounts.sum(axis=1))[:, None]
+    ln_a = ln_y + state.ln_fugacity_coefficients + np.log(found.pressure / 1e5)[:, None]
+    assert_allclose(ln_a @ SHIFTED.nu.T, ln_k, atol=1e-10)
+    assert found.balance.max() < 1e-12
+
+
+def test_a_gas_that_would_condense_is_told():
+    reactions = reaction_set(["CO + H2O <=> CO2 + H2"])
+    t_c, p_c, omega = np.array([CRITICAL[name] for name in reactions.names]).T
+    of = problem(
+        reactions,
+        [{"CO": 1, "H2O": 9}] * 2,
+        [3.0],
+        pressure=np.array([1e7, 1e6]),
+        temperature=480.0,
+        equation=CubicEquation("peng-robinson", t_c, p_c * 1e5, omega),
+    )
+    found = solve_equilibrium(of)
+    # Steam at 480 K condenses above 19 bar (common practice).
+    told = found.may_condense[0] or 0 in found.faults
+    assert told
+    assert not found.may_condense[1]
 
 
 def test_pure_phases_beside_a_real_gas():

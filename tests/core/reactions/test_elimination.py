@@ -5,7 +5,7 @@ import sympy
 from hypothesis import given
 from hypothesis import strategies as st
 
-from core.reactions.elimination import eliminate, null_vector
+from core.reactions.elimination import eliminate, null_space, null_vector
 
 
 @st.composite
@@ -58,3 +58,25 @@ def test_the_rows_that_follow_from_those_before_are_named():
         {},
     ]
     assert eliminate(rows).dependent == [1, 3, 4]
+
+
+@given(matrices())
+def test_the_null_space_is_that_of_a_reference_library(matrix):
+    columns, rows = matrix
+    names = [f"x{at}" for at in range(columns)]
+    basis = null_space(sparse(rows), names)
+    reference = sympy.Matrix(len(rows), columns, [sympy.Rational(v) for row in rows for v in row])
+    assert len(basis) == columns - reference.rank()
+    for vector in basis:
+        assert list(vector.values())[-1] == 1
+        for row in rows:
+            total = sum(a * vector.get(name, 0) for a, name in zip(row, names, strict=True))
+            assert total == 0
+    own = [list(vector)[-1] for vector in basis]
+    assert len(set(own)) == len(own)
+    assert all(
+        name not in other
+        for name, v in zip(own, basis, strict=True)
+        for other in basis
+        if other is not v
+    )
