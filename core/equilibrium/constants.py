@@ -81,9 +81,18 @@ class StatedConstants:
         temperature: FloatArray,
         rows: IntArray,  # noqa: ARG002 - the protocol's signature
     ) -> FloatArray:
-        """Return ln K, see :class:`Constants`."""
+        """Return ln K, see :class:`Constants`.
+
+        Raises
+        ------
+        Refused
+            ``equilibrium-constant-does-not-fit``: a K of its kind says nothing about
+            a reaction in a liquid.
+        """
         columns = []
         for j, (k, subject) in enumerate(zip(self.stated, self.subjects, strict=True)):
+            if self.phase == "liquid":
+                k.check_liquid(self.reactions, j, self.in_mixture, subject)
             ln = np.broadcast_to(k.constant.ln_at(temperature, subject), temperature.shape)
             total = coefficient_sum(self.reactions.nu[j], self.in_mixture)
             if self.phase == "gas" and total:

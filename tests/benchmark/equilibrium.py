@@ -12,7 +12,8 @@ import numpy as np
 from scipy.optimize import root
 
 from core.arrays import FloatArray
-from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
+from core.equilibrium.equilibrium import solve_equilibrium
+from core.equilibrium.problem import EquilibriumProblem
 from tests.benchmark._interleave import medians
 from tests.core.equilibrium.cases import Kind, draw
 
