@@ -10,12 +10,12 @@ import numpy as np
 from marshmallow import fields
 
 from core.arrays import FloatArray
-from core.equilibrium.equilibrium import Hold
 from core.equilibrium.feed_at_equilibrium import (
     FeedAtEquilibrium,
     Over,
 )
 from core.equilibrium.outlet import MeasuredOutlet
+from core.equilibrium.problem import Hold
 from core.errors import Note, Refused, Subject
 from core.outlet_analysis.feed import KnownFeed, feed_of_account
 from core.outlet_analysis.reconciliation import estimate

@@ -351,36 +351,79 @@ def spread_out(amounts: FloatArray, nu: FloatArray) -> FloatArray:
 def _missed(search: _Search, pattern: BoolArray, rows: IntArray) -> IntArray:
     """Bring back the pure phase that most wants to form; return the samples in which one does."""
     task = search.task
+    gone = rows[search.status[rows] == Status.MIXTURE_VANISHED]
     rows = rows[search.status[rows] == Status.FOUND]
+    if len(gone):
+        return np.concatenate(
+            [_missed(search, pattern, rows), _missed_without_mixture(search, pattern, gone)]
+        )
     if not len(search.pure) or not len(rows):
         return rows[:0]
     best = np.full(len(rows), -_FORMS)
     which = np.full(len(rows), -1, dtype=np.intp)
+    can_be = task.in_mixture & search.reachable[rows].any(axis=0)
+    empty = task.per_total and not (pattern & task.in_mixture).any()
     for phase in search.pure.tolist():
         if pattern[phase]:
             continue
-        within = pattern.copy()
+        within = pattern | can_be
         within[phase] = True
         steps = task.space.steps(~within)
-        forming = np.flatnonzero(steps.nu[:, phase] != 0)
-        if not len(forming):
-            continue
-        nu = steps.nu[forming[0]] / steps.nu[forming[0], phase]
-        weights = steps.weights[forming[0]] / steps.nu[forming[0], phase]
-        ln_n = search.ln_amounts[rows]
-        ln_activity = np.where(task.in_mixture & (nu != 0), ln_n, 0.0)
-        if task.per_total:
-            total = np.log(np.exp(ln_n[:, task.in_mixture]).sum(axis=1, keepdims=True))
-            ln_activity = np.where(task.in_mixture & (nu != 0), ln_activity - total, 0.0)
-        excess = ln_activity @ nu - task.ln_k[rows] @ weights
-        excess = np.where(search.reachable[rows, phase], excess, 0.0)
-        better = excess < best
-        best[better], which[better] = excess[better], phase
+        for k in np.flatnonzero(steps.nu[:, phase] != 0).tolist():
+            nu = steps.nu[k] / steps.nu[k, phase]
+            weights = steps.weights[k] / steps.nu[k, phase]
+            if empty:
+                # There is no mixture for it to form with: would it make one by itself?
+                if (nu[task.in_mixture] < 0).any():
+                    continue
+                ln_q = np.full(len(rows), -np.log(max(int(can_be.sum()), 1)))
+            else:
+                ln_q = _ln_activities(task, search.ln_amounts[rows], nu) @ nu
+            excess = ln_q - task.ln_k[rows] @ weights
+            excess = np.where(search.reachable[rows, phase], excess, 0.0)
+            better = excess < best
+            best[better], which[better] = excess[better], phase
+            if not empty:
+                break  # the others say the same where all of the mixture is there
     entering = np.flatnonzero(which >= 0)
     back, phase = rows[entering], which[entering]
     if len(back):
         _bring_back(search, pattern, back, phase)
     return back
+
+
+def _ln_activities(task: Task, ln_amounts: FloatArray, nu: FloatArray) -> FloatArray:
+    """Return ln of the activities of what stands in a reaction, (m, S), else 0."""
+    involved = task.in_mixture & (nu != 0)
+    if task.per_total:
+        total = np.logaddexp.reduce(ln_amounts[:, task.in_mixture], axis=1)
+        return np.where(involved, ln_amounts - total[:, None], 0.0)
+    return np.where(involved, ln_amounts, 0.0)
+
+
+def _missed_without_mixture(search: _Search, pattern: BoolArray, rows: IntArray) -> IntArray:
+    """Bring back a pure phase that others would turn into, once nothing is left in the mixture."""
+    task = search.task
+    back: BoolArray = np.zeros(len(rows), dtype=bool)
+    for phase in search.pure.tolist():
+        if pattern[phase]:
+            continue
+        within = pattern & ~task.in_mixture
+        within[phase] = True
+        steps = task.space.steps(~within)
+        forming = np.flatnonzero(steps.nu[:, phase] != 0)
+        if not len(forming):
+            continue
+        weights = steps.weights[forming[0]] / steps.nu[forming[0], phase]
+        wants = (task.ln_k[rows] @ weights > _FORMS) & search.reachable[rows, phase] & ~back
+        search.there[rows[wants], phase] = True
+        back |= wants
+    again = rows[back]
+    search.amounts[again] = np.exp(search.ln_amounts[again])
+    search.changes[again] += 1
+    search.warm[again] = False
+    search.status[again] = Status.NOT_CONVERGED
+    return again
 
 
 def _bring_back(search: _Search, pattern: BoolArray, rows: IntArray, phase: IntArray) -> None:
@@ -389,7 +432,7 @@ def _bring_back(search: _Search, pattern: BoolArray, rows: IntArray, phase: IntA
     search.amounts[rows] = np.exp(search.ln_amounts[rows])
     for at in np.unique(phase).tolist():
         mine = rows[phase == at]
-        within = pattern.copy()
+        within = pattern | (task.in_mixture & search.reachable[mine].any(axis=0))
         within[at] = True
         nu = task.space.steps(~within).nu
         row = nu[np.flatnonzero(nu[:, at] != 0)[0]]

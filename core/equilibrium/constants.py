@@ -81,15 +81,23 @@ class StatedConstants:
         temperature: FloatArray,
         rows: IntArray,  # noqa: ARG002 - the protocol's signature
     ) -> FloatArray:
-        """Return ln K, see :class:`Constants`."""
+        """Return ln K, see :class:`Constants`.
+
+        Raises
+        ------
+        Refused
+            ``equilibrium-constant-does-not-fit``: a K of its kind says nothing about
+            a reaction in a liquid.
+        """
         each = [self.one_ln_k(j, temperature) for j in range(len(self.stated))]
         return np.stack(each, axis=1)
 
     def one_ln_k(self, reaction: int, temperature: FloatArray) -> FloatArray:
         """Return ln K of one reaction, shape of the temperatures (K)."""
-        k = self.stated[reaction]
-        ln = k.constant.ln_at(temperature, self.subjects[reaction])
-        ln = np.broadcast_to(ln, temperature.shape)
+        k, subject = self.stated[reaction], self.subjects[reaction]
+        if self.phase == "liquid":
+            k.check_liquid(self.reactions, reaction, self.in_mixture, subject)
+        ln = np.broadcast_to(k.constant.ln_at(temperature, subject), temperature.shape)
         total = coefficient_sum(self.reactions.nu[reaction], self.in_mixture)
         if self.phase == "gas" and total:
             ln = ln + total * self._ln_per_standard(k, temperature)

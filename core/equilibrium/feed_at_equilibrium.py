@@ -12,14 +12,9 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.equilibrium.constants import StatedConstants
-from core.equilibrium.equilibrium import (
-    Equilibrium,
-    EquilibriumProblem,
-    Hold,
-    Mixture,
-    solve_equilibrium,
-)
+from core.equilibrium.equilibrium import solve_equilibrium
 from core.equilibrium.newton import IntArray
+from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Hold, Mixture
 from core.errors import Fault, Note, Refused, Subject, refuse
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConstant
@@ -254,9 +249,6 @@ def _check(problem: FeedAtEquilibrium) -> None:
             "found a volume, and {hold} is held, from which it follows; leave it out",
             hold=problem.hold,
         )
-    stream = replace(feed, temperature=problem.temperature or feed.temperature)
-    for j, constant in enumerate(problem.constants):
-        constant.check(reactions, j, stream, constant_subject(reactions, j))
     varies = problem.over == "temperature" or not problem.hold.startswith("temperature")
     if varies:
         check_temperature_dependence(problem)

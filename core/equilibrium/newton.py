@@ -41,6 +41,7 @@ _TO_NOTHING = np.log(1e-6)  # of what it was before
 _ROUNDING = np.log(1e-13)  # of all matter
 _SMALLEST_SHARE = 1e-12
 _FLAT = 100.0  # how much longer than the affinities a step may be
+_STRIDE = 5.0  # of ln of a mixture that pure phases alone make up
 _CLOSE = 1e-3  # |ln(Q/K)| below which Newton's method needs no guidance
 _DEEP = -600.0  # ln of an amount near the least that is a number of full precision
 
@@ -72,6 +73,11 @@ class System:
     ln_k: FloatArray
     held: FloatArray
     spent_below: FloatArray
+
+    @property
+    def all_from_pure(self) -> bool:
+        """Whether pure phases alone fix the share of each substance of the mixture."""
+        return self.per_total and int(self.in_mixture.sum()) == len(self.nu)
 
     def samples(self, rows: BoolArray | IntArray) -> System:
         """Return some of the samples."""
@@ -204,7 +210,8 @@ def _find_block(system: System, start: FloatArray) -> Outcome:
             done = rows[ended]
             ln_all[done], iterations[done] = ln_n[ended], step
             converged[rows[settled]] = True
-            vanished[rows[gone]] = True
+            # Elsewhere it may have gone down the wrong way: nothing is claimed.
+            vanished[rows[gone]] = system.all_from_pure
             on = ~ended
             rows, part, ln_n = rows[on], part.samples(on), ln_n[on]
             basis, affinity, total = basis.samples(on), affinity[on], total[on]
@@ -325,6 +332,13 @@ def _newton_step(
 ) -> FloatArray:
     """Return the change of the logarithms of the minor amounts, (N, r)."""
     ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
+    if system.all_from_pure:
+        # The pure phases alone say which shares the mixture would have to have; if these add up
+        # to more than one it grows, in these proportions, until a phase is used up.
+        ln_share = ln_minor - total[:, None] - affinity
+        ln_sum = np.logaddexp.reduce(ln_share, axis=1)
+        onward: FloatArray = -affinity + (_STRIDE * np.sign(ln_sum) - ln_sum)[:, None]
+        return onward
     mixture = np.where(system.in_mixture, basis.of_major, 0.0)
     shares = np.where(mixture != 0, mixture * np.exp(ln_minor[:, :, None] - ln_n[:, None, :]), 0.0)
     matrix = mixture @ shares.transpose(0, 2, 1)
@@ -334,8 +348,8 @@ def _newton_step(
     identity = np.eye(matrix.shape[1])
     matrix += identity
     change = solve_stack(matrix, -affinity[:, :, None])[:, :, 0]
-    # Where pure phases alone make up the whole mixture nothing but its amount is left to
-    # change, along which the Gibbs energy is a straight line: some way down it.
+    # Where pure phases make up nearly the whole mixture there is a direction along which the Gibbs
+    # energy is all but a straight line: some way down it.
     weight = np.exp(ln_minor - ln_minor.max(axis=1, keepdims=True))
     far = _FLAT * (1.0 + np.abs(affinity).max(axis=1))
     downhill = (affinity * weight * change).sum(axis=1) < 0

@@ -7,7 +7,7 @@ from typing import ClassVar, Literal
 
 import numpy as np
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.dimensions import DIMENSIONS, Exponents
 from core.errors import Amount, Note, Subject, refuse
@@ -235,7 +235,8 @@ class EquilibriumConstant:
             ``impossible-value``.
         """
         nu = np.where(stream.in_phase, reactions.nu[reaction], 0.0)
-        self.check(reactions, reaction, stream, subject)
+        if stream.phase == "liquid":
+            self.check_liquid(reactions, reaction, stream.in_phase, subject)
         ln_k = self.constant.ln_at(stream.temperature, subject)
         if self.kind == "pressure":
             return product_of(nu, "partial-pressure", stream, -ln_k)
@@ -248,23 +249,15 @@ class EquilibriumConstant:
         ratio = np.log(pressure_per_concentration(stream) / standard)
         return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0))
 
-    def check(
-        self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject
+    def check_liquid(
+        self, reactions: ReactionSet, reaction: int, in_phase: BoolArray, subject: Subject
     ) -> None:
-        """Refuse a constant that says nothing of this reaction in a liquid.
-
-        Raises
-        ------
-        Refused
-            ``equilibrium-constant-does-not-fit``.
-        """
-        if stream.phase != "liquid":
-            return
+        """Refuse a constant that says nothing about a reaction in a liquid."""
         nu = reactions.nu[reaction]
         escaping = [
             substance.name
             for i, substance in enumerate(reactions.substances)
-            if nu[i] and not stream.in_phase[i] and substance.phase == "gas"
+            if nu[i] and not in_phase[i] and substance.phase == "gas"
         ]
         if escaping:
             raise refuse(
@@ -281,7 +274,7 @@ class EquilibriumConstant:
                 "a constant in powers of pressure was given for a reaction in a liquid; give it "
                 "in powers of concentration",
             )
-        if self.kind == "thermodynamic" and coefficient_sum(nu, stream.in_phase):
+        if self.kind == "thermodynamic" and coefficient_sum(nu, in_phase):
             raise refuse(
                 "equilibrium-constant-does-not-fit",
                 subject,

@@ -2,8 +2,8 @@
 
 The script solves for the extents, its residual ln Q - ln K in NumPy, from a
 small extent of each reaction. Where K runs over six decades it finds the answer
-in about six cases of ten, and its time is shared among those, since it is
-answers that are wanted; every case counts for us, since every case is solved.
+in about six cases of ten; we find every one. The first ratio counts what the
+script attempts, the second what it solves.
 """
 
 from __future__ import annotations
@@ -12,7 +12,8 @@ import numpy as np
 from scipy.optimize import root
 
 from core.arrays import FloatArray
-from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
+from core.equilibrium.equilibrium import solve_equilibrium
+from core.equilibrium.problem import EquilibriumProblem
 from tests.benchmark._interleave import medians
 from tests.core.equilibrium.cases import Kind, draw
 
@@ -49,4 +50,12 @@ def run() -> list[tuple[str, float, float]]:
         lambda: solve_equilibrium(of),
         times=7,
     )
-    return [("gas equilibrium, series, per case solved", theirs / solved / (ours / SERIES), 25.0)]
+    ratio = theirs / SAMPLED / (ours / SERIES)
+    return [
+        ("gas equilibrium, series", ratio, 25.0),
+        (
+            "gas equilibrium, series, per case that the script solves",
+            ratio * SAMPLED / solved,
+            25.0,
+        ),
+    ]

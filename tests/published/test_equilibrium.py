@@ -5,7 +5,8 @@ import pytest
 from numpy.testing import assert_allclose
 
 from core.equilibrium.constants import KnownConstants
-from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
+from core.equilibrium.equilibrium import solve_equilibrium
+from core.equilibrium.problem import EquilibriumProblem
 from core.real_gas.cubic import CubicEquation
 from tests.core.equilibrium.cases import mixture, problem, reaction_set
 

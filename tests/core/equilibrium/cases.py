@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from core.equilibrium.constants import KnownConstants
-from core.equilibrium.equilibrium import Equilibrium, EquilibriumProblem, Mixture
+from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Mixture
 from core.reactions.build import ReactionInput, build_reaction_set
 from core.reactions.reaction_set import ReactionSet
 

@@ -6,7 +6,8 @@ from numpy.testing import assert_allclose
 
 from core.constants import GAS_CONSTANT
 from core.equilibrium.constants import StatedConstants
-from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
+from core.equilibrium.equilibrium import solve_equilibrium
+from core.equilibrium.problem import EquilibriumProblem
 from core.equilibrium.reaction_space import reaction_space
 from core.errors import Refused
 from core.rates.constants import Constant
@@ -164,6 +165,23 @@ def test_constants_as_they_are_stated():
         found.append(solve_equilibrium(of).extents[0, 0])
     # y_NO2^2/y_N2O4 P/P0 = K: xi = sqrt(K/(K + 4 P/P0)).
     assert_allclose(found, np.sqrt(k / (k + 12.0)), rtol=1e-12)
+
+
+@pytest.mark.parametrize("kind", ["pressure", "thermodynamic"])
+def test_constants_that_say_nothing_about_a_liquid(kind):
+    reactions = reaction_set(["N2O4 <=> 2 NO2"])
+    stated = StatedConstants(
+        reactions,
+        [EquilibriumConstant(kind, Constant(2.0))],
+        np.ones(2, dtype=bool),
+        "liquid",
+        1e5,
+        [("k",)],
+    )
+    with pytest.raises(Refused) as raised:
+        stated.ln_k(np.array([300.0]), np.array([0]))
+    fault = raised.value.faults[0]
+    assert (fault.code, fault.subject) == ("equilibrium-constant-does-not-fit", ("k",))
 
 
 def test_a_liquid_by_concentrations():

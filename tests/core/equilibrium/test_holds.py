@@ -5,7 +5,8 @@ from scipy.optimize import brentq
 
 from core.constants import GAS_CONSTANT as R
 from core.equilibrium.constants import KnownConstants
-from core.equilibrium.equilibrium import EquilibriumProblem, solve_equilibrium
+from core.equilibrium.equilibrium import solve_equilibrium
+from core.equilibrium.problem import EquilibriumProblem
 from core.real_gas.cubic import CubicEquation
 from tests.core.equilibrium.cases import mixture, problem, reaction_set
 
