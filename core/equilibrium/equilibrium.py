@@ -27,6 +27,7 @@ CONSISTENT = 1e-6
 """|sum w ln K| of reactions that add up to nothing, below which their constants agree."""
 _FUGACITIES_SETTLED = 5e-12
 _MOST_ROUNDS = 80
+_TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
 
 
 @np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore")
@@ -63,17 +64,19 @@ def _extents(nu: FloatArray, change: FloatArray, size: FloatArray) -> FloatArray
     A trace that is made out of nothing tells its extent to the last digit,
     where the loss of what there is much of tells none.
     """
-    found = np.full((len(change), len(nu)), np.nan)
-    good = np.isfinite(change).all(axis=1)
-    if not len(nu) or not good.any():
+    found: FloatArray = change @ np.linalg.pinv(nu) if len(nu) else np.zeros((len(change), 0))
+    if not len(nu):
         return found
-    weight = 1.0 / np.where(size[good] > 0, size[good], 1.0)
+    # Only where an extent is small against what there is does it hang on which change tells it.
+    small = np.flatnonzero((np.abs(found) < _TELLING * size.max(axis=1)[:, None]).any(axis=1))
+    if not len(small):
+        return found
+    weight = 1.0 / np.where(size[small] > 0, size[small], 1.0)
     # Each reaction in units in which what it makes or uses of the scarcest is one.
-    steep = np.abs(nu) * weight[:, None, :]
-    unit = 1.0 / steep.max(axis=2)
-    scaled = nu * weight[:, None, :] * unit[:, :, None]
-    back = np.linalg.pinv(scaled)
-    found[good] = ((change[good] * weight)[:, None, :] @ back)[:, 0] * unit
+    weighted = nu * weight[:, None, :]
+    unit = 1.0 / np.abs(weighted).max(axis=2)
+    back = np.linalg.pinv(weighted * unit[:, :, None])
+    found[small] = ((change[small] * weight)[:, None, :] @ back)[:, 0] * unit
     return found
 
 

@@ -220,3 +220,14 @@ def test_impossible_feeds(bad):
     with pytest.raises(Refused) as raised:
         solve_equilibrium(problem(reactions, [{"H2O": 1}, {}], [0.0, 0.0]))
     assert raised.value.faults[0].code == "no-flow"
+
+
+@pytest.mark.parametrize("ln_k", [-70.0, -140.0, -700.0])
+def test_the_extent_of_a_trace_is_known_as_well_as_the_trace(ln_k):
+    reactions = reaction_set(["N2 + O2 <=> 2 NO", "N2 + 2 O2 <=> 2 NO2"], ["Ar"])
+    feed = {"N2": 79.0, "O2": 21.0, "Ar": 1.0}
+    found = solve_equilibrium(problem(reactions, [feed], [ln_k, ln_k / 2]))
+    amounts = amounts_by_name(reactions, found)
+    assert_allclose(found.extents[0], [amounts["NO"] / 2, amounts["NO2"] / 2], rtol=1e-12)
+    # What takes no part is what was fed, to the last digit.
+    assert amounts["Ar"] == 1.0
