@@ -50,11 +50,6 @@ def _library() -> Any:
     return Figure
 
 
-def prepare() -> None:
-    """Load what drawing needs, before a process is copied."""
-    _library()
-
-
 def svg(plot: Plot) -> str:
     """Return a plot as an SVG document."""
     with _ONE_AT_A_TIME, warnings.catch_warnings():

@@ -156,8 +156,8 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         ``key-absent``, ``condition-missing``, ``hold-needs-batch``,
         ``sweep-does-not-fit``, ``constant-at-one-temperature``,
         ``equilibrium-constant-does-not-fit``, ``field-not-used``,
-        ``compute-budget``, what the constants refuse, and what :func:`core.equilibrium.equilibrium.solve_equilibrium` does of the
-        state asked for.
+        ``compute-budget``, what the constants refuse, and of the state asked for
+        what :func:`core.equilibrium.equilibrium.solve_equilibrium` does.
     """
     reactions, feed = problem.reactions, problem.feed
     _check(problem)
