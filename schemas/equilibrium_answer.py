@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -476,19 +476,50 @@ class _Writer:
         for name, words in HEATS.items():
             if heat is not None and name in heat:
                 numbers.append((words, heat[name]))
+        verdict = f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %."
         if self.approach is not None:
-            numbers += [
-                (f"approach of {id_}", None if of is None else of["approach"])
-                for id_, of in self._approach().items()
-            ]
+            for id_, of in self._approach().items():
+                numbers.append((f"approach of {id_}", None if of is None else of["approach"]))
+                if of is not None:
+                    verdict += f" {_short_of(of['approach'], id_)}"
         plots = self._plots() if problem.values is not None else ()
         return Page(
             title=f"Equilibrium of {' and '.join(self.ids)}",
-            verdict=f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %.",
+            verdict=verdict,
             numbers=tuple(numbers),
             plots=plots,
-            tables=((f"Composition at {at}", self._composition()),),
+            tables=(
+                (f"Composition at {at}", self._composition()),
+                (f"Reactions at {at}", self._reactions_table()),
+            ),
         )
+
+    def _reactions_table(self) -> Table:
+        """Return a row for each reaction: how far it goes, and what K it comes from."""
+        flow = self.edge.scales[self.words.flow_dimension]
+        constants = self._constants()
+        columns: dict[str, list[Any]] = {"reaction": list(self.ids)}
+        units: dict[str, str] = {}
+        if self.reactions.rank == len(self.ids):
+            columns["extent"] = _cells(self.states.extents[0] / flow.factor)
+            units["extent"] = flow.unit
+        columns["ln K"] = [constants[id_]["natural_logarithm"]["value"] for id_ in self.ids]
+        columns["K from"] = [constants[id_]["from"] for id_ in self.ids]
+        if self.approach is not None:
+            told = [self._approach()[id_] for id_ in self.ids]
+            temperature = self.edge.scales["temperature"]
+            name = "outlet at equilibrium at"
+            columns[name] = [
+                None if of is None else of["equilibrium_temperature"]["value"] for of in told
+            ]
+            units[name] = temperature.unit
+            columns["Q/K of outlet"] = [
+                None
+                if of is None or of["quotient_over_constant"] is None
+                else of["quotient_over_constant"]["value"]
+                for of in told
+            ]
+        return Table(columns, units)
 
     def _plots(self) -> tuple[Plot, ...]:
         table, over = self._sweep(), self.problem.over
@@ -497,7 +528,6 @@ class _Writer:
         x_label = f"{over} [{table.units[over]}]"
         y = table.columns["conversion"]
         key = self.names[self.problem.key]
-        fractions = [name for name in table.columns if name.startswith("mole fraction ")]
         plots = [
             Plot(
                 f"Conversion of {key} against {over}",
@@ -508,32 +538,58 @@ class _Writer:
                 table,
             )
         ]
-        if fractions:
-            largest = max(fractions, key=lambda name: max(v or 0.0 for v in table.columns[name]))
-            name = largest.removeprefix("mole fraction ")
-            plots.append(
-                Plot(
-                    f"Composition against {over}",
-                    x_label,
-                    "mole fraction",
-                    tuple(
-                        Curve(f.removeprefix("mole fraction "), x, table.columns[f])
-                        for f in fractions
-                    ),
-                    _course(
-                        f"of {len(fractions)} substances {name} comes to the largest share; its"
-                        " mole fraction",
-                        table.columns[largest],
-                        x,
-                        table.units[over],
-                    ),
-                    Table(
-                        {n: table.columns[n] for n in (over, *fractions)},
-                        {over: table.units[over]},
-                    ),
-                )
-            )
+        inside = self.feed.in_phase
+        known = not self.feed.solvent_unknown
+        named = list(enumerate(self.names))
+        fractions = {n: f"mole fraction {n}" for i, n in named if inside[i] and known}
+        flows = {n: f"{self.words.flow} {n}" for i, n in named if not (inside[i] and known)}
+        for title, columns in (("Composition", fractions), ("What is not in the gas", flows)):
+            if self.feed.phase == "liquid" and columns is flows:
+                title = "Flows"  # noqa: PLW2901
+            if columns:
+                plots.append(self._share_plot(f"{title} against {over}", columns, table, x_label))
         return tuple(plots)
+
+    def _share_plot(
+        self, title: str, columns: Mapping[str, str], table: Table, x_label: str
+    ) -> Plot:
+        """Return a plot of one column for each of several substances."""
+        over = self.problem.over
+        assert over is not None
+        x = table.columns[over]
+        name, column = max(
+            columns.items(), key=lambda each: max(v or 0.0 for v in table.columns[each[1]])
+        )
+        what = column.removesuffix(f" {name}")
+        unit = table.units.get(column, "1")
+        shown = (over, *columns.values())
+        return Plot(
+            title,
+            x_label,
+            what if unit == "1" else f"{what} [{unit}]",
+            tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
+            _course(
+                f"the largest {what} is that of {name}, which",
+                table.columns[column],
+                x,
+                table.units[over],
+                unit,
+            ),
+            Table(
+                {n: table.columns[n] for n in shown},
+                {n: table.units[n] for n in shown if n in table.units},
+            ),
+        )
+
+
+def _short_of(approach: Json, reaction: str) -> str:
+    """Say what an approach means."""
+    size = {**approach, "value": abs(approach["value"])}
+    side = "short of" if approach["value"] >= 0 else "beyond"
+    told_ = f"The measured outlet is {told(size)} {side} the equilibrium of {reaction}"
+    if abs(approach["value"]) <= 2 * approach["u"]:
+        told_ += ", which its readings cannot tell from it"
+    return told_ + "."
 
 
 def _finite(value: Any) -> float | None:
@@ -544,17 +600,23 @@ def _cells(values: FloatArray) -> list[float | None]:
     return [value if math.isfinite(value) else None for value in values.tolist()]
 
 
-def _course(what: str, y: Sequence[float | None], x: Sequence[float | None], unit: str) -> str:
+def _course(
+    what: str,
+    y: Sequence[float | None],
+    x: Sequence[float | None],
+    x_unit: str,
+    y_unit: str = "1",
+) -> str:
     """Say how a curve runs, for who cannot see it."""
     there = [(a, b) for a, b in zip(x, y, strict=True) if a is not None and b is not None]
+    begun = f"{what[0].upper()}{what[1:]}"
     if not there:
-        return f"{what[0].upper()}{what[1:]} is not known anywhere on the sweep."
+        return f"{begun} is not known anywhere on the sweep."
+    unit = "" if y_unit == "1" else f" {y_unit}"
     (x0, y0), (x1, y1) = there[0], there[-1]
     high = max(there, key=lambda point: point[1])
-    told = (
-        f"{what[0].upper()}{what[1:]} goes from {y0:.4g} at {x0:.5g} {unit} to {y1:.4g} at"
-        f" {x1:.5g} {unit}"
-    )
+    said = f"{begun} goes from {y0:.4g}{unit} at {x0:.5g} {x_unit} to"
+    said += f" {y1:.4g}{unit} at {x1:.5g} {x_unit}"
     if high[1] > 1.001 * max(y0, y1) + 1e-12:
-        told += f", with {high[1]:.4g} at {high[0]:.5g} {unit} as the most"
-    return f"{told}."
+        said += f", with {high[1]:.4g}{unit} at {high[0]:.5g} {x_unit} as the most"
+    return f"{said}."
