@@ -207,6 +207,12 @@ NOTES: dict[str, Entry] = {
         "The gas was taken as ideal, and an equation of state puts its Z outside 0.95 to 1.05. Ask"
         " for one of the other gas models.",
     ),
+    "fugacities-not-ideal": Entry(
+        "Fugacities are not those of an ideal gas",
+        "The gas was taken as ideal, and by an equation of state its fugacities change an"
+        " equilibrium constant in partial pressures by more than 5 %. Ask for one of the other gas"
+        " models.",
+    ),
     "gas-may-condense": Entry(
         "The gas may condense",
         "An equation of state has a liquid form out of the gas, which the answer takes as one"

@@ -432,8 +432,9 @@ _MOLE_ACCOUNT: dict[str, Entry] = {
 _OUTLET_ANALYSIS: dict[str, Entry] = {
     "compute-budget": Entry(
         "Compute budget used up",
-        "The account has more unknowns or readings than are worked through in one request. Leave"
-        " out what does not matter, take streams together, or split it.",
+        "The question takes more work than one request may: an account with very many unknowns or"
+        " readings, or an equilibrium of many reactions at many points. Leave out what does not"
+        " matter, take streams together, ask for fewer points, or split it.",
     ),
     "under-determined": Entry(
         "Readings do not settle the account",

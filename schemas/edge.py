@@ -392,7 +392,7 @@ class RequestReader:
                 usable = (signed and value == raw.value == 0) or SMALLEST < abs(value) < BIGGEST
                 if usable and abs(raw.value) <= LARGEST and (signed or value > 0):
                     return spelt, float(value)
-                wanted = "a usable size" if signed else "above zero"
+                wanted = "above zero" if raw.value <= 0 and not signed else "a usable size"
                 self.fault("impossible-value", pointer, f"found {raw.text!r}; {wanted} is needed")
                 return None
         expected = " or ".join(repr(spelt) for spelt in allowed)

@@ -141,6 +141,8 @@ def _read_question(
     key, feed, outlet = _read_streams(request, reader, reactions)
     phase: StreamPhase = request["feed"].get("phase", "gas") if feed is None else feed.stream.phase
     constants = _read_constants(request, reader, reactions, phase)
+    reader.at(("reactions",), "/reactions")
+    reader.at(("feed", "compressibility"), "/feed/compressibility")
     reader.at(("hold",), "/hold")
     reader.at(("gas_model",), "/gas_model")
     at = _read_conditions(request.get("at", {}), reader)
@@ -226,7 +228,10 @@ def _read_streams(
         return problem.key, None, None
     reader.assumed.extend(feed.assumed)
     reader.notes.extend(feed.notes)
-    reader.assumed.extend(account.readings.readings.default_notes(set(found.readings.subjects)))
+    counted = {of_outlet.temperature.subject, *found.readings.subjects}
+    if of_outlet.pressure is not None:
+        counted.add(of_outlet.pressure.subject)
+    reader.assumed.extend(account.readings.readings.default_notes(counted))
     volume = form = None
     if of_outlet.phase == "liquid":
         sides_: tuple[Literal["outlet", "feed"], ...] = ("outlet", "feed")
@@ -235,8 +240,17 @@ def _read_streams(
             if own is not None and np.isfinite(own):
                 volume, form = float(own), found.liquid_volume_form(side_)
                 break
+    if of_outlet.phase != of_feed.phase:
+        reader.fault(
+            "conflicting-fields",
+            "/outlet/phase",
+            f"found an outlet that is a {of_outlet.phase} and a feed that is a {of_feed.phase}; the"
+            " approach is to the equilibrium in the phase that the feed is in",
+        )
+        return problem.key, None, None
+    untold = ((found.account.outlet_map != 0) & ~found.told).any(axis=1)
     outlet = MeasuredOutlet(
-        flows=found.outlet_flows,
+        flows=np.where(untold, np.nan, found.outlet_flows),
         forms=found.account.outlet_map,
         covariance=found.covariance,
         temperature=of_outlet.temperature,
@@ -258,8 +272,8 @@ def _read_constants(
                 "field-needed",
                 pointer if isinstance(said, str) else f"{pointer}/equilibrium_constant",
                 "the equilibrium of a reaction needs its constant: write the reaction as an object"
-                " with 'equation' and 'equilibrium_constant', which may be"
-                ' {"from": "thermochemistry"}',
+                " with 'equation' and 'equilibrium_constant', which may be taken from"
+                " thermochemistry",
             )
             continue
         if "rate" in said:

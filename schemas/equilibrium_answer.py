@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -15,10 +15,11 @@ from core.equilibrium.feed_at_equilibrium import (
     constant_subject,
 )
 from core.equilibrium.outlet import ReactionApproach
-from core.errors import Note
+from core.errors import Note, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import (
+    STANDARD_PRESSURE,
     LnCorrelation,
     VantHoff,
     coefficient_sum,
@@ -68,14 +69,22 @@ class ApproachSchema(OpenSchema):
     equilibrium_temperature = number(
         "At which the outlet's composition would be at equilibrium.", required=True
     )
-    quotient_over_constant = number("Q/K at the outlet's temperature.", required=True)
+    quotient_over_constant = number(
+        "Q/K at the outlet's temperature; below one: short of equilibrium, as the reaction is"
+        " written. Null where it is beyond what a number of a computer holds.",
+        required=True,
+    )
 
 
 class EquilibriumHeatSchema(OpenSchema):
     """The heat of going from the feed to equilibrium."""
 
-    duty = number("To be supplied (below zero: removed).")
-    adiabatic_rise = number("Where no heat passes.")
+    duty = number(
+        "To be supplied to hold the temperature (below zero: removed); of a batch that holds its"
+        " volume the change of internal energy. Per mole of key, where no reading tells how much"
+        " flows."
+    )
+    adiabatic_rise = number("Of the temperature, where no heat passes.")
 
 
 class EquilibriumResult(OpenSchema):
@@ -107,8 +116,18 @@ class EquilibriumResult(OpenSchema):
         allow_none=True,
         metadata=describe("Null where enthalpies are not known."),
     )
-    approach = numbers_by_name(ApproachSchema, "By reaction, of the measured outlet.")
-    sweep = fields.Nested(TableSchema)
+    approach = numbers_by_name(
+        ApproachSchema,
+        "By reaction, of the measured outlet; u is of its readings, K is taken as exact.",
+    )
+    sweep = fields.Nested(
+        TableSchema,
+        metadata=describe(
+            "A row for each point; null where there is no answer. Columns: temperature, pressure,"
+            " conversion, extent and mole fraction (or flow) by name, compressibility of a real"
+            " gas, and the duty where the temperature is held."
+        ),
+    )
 
 
 EquilibriumAnswer = envelope("EquilibriumAnswer", EquilibriumResult)
@@ -215,10 +234,9 @@ class _Writer:
             result["approach"] = self._approach()
         if problem.values is not None:
             result["sweep"] = self._sweep().document()
-        constants = [(j, c) for j, c in enumerate(problem.constants)]
         assumed = [
             note
-            for j, constant in constants
+            for j, constant in enumerate(problem.constants)
             for note in constant.assumed(self.temperature, constant_subject(self.reactions, j))
         ]
         if self.feed.phase == "liquid":
@@ -240,6 +258,13 @@ class _Writer:
     def _number(self, value: float, dimension: str) -> Json | None:
         known = _finite(value)
         return None if known is None else self.edge.number(known, dimension)
+
+    def _absolute(self, pressure: float) -> Json:
+        """Return a pressure that is no reading: never in a gauge unit."""
+        scale = self.edge.scales["pressure"]
+        if scale.offset:
+            return {"value": pressure / STANDARD_PRESSURE, "unit": "bar"}
+        return self.edge.number(pressure, "pressure")
 
     def _inlet_volume(self) -> float | None:
         own = self.feed.volumetric_flow
@@ -287,7 +312,7 @@ class _Writer:
         for j, (id_, constant) in enumerate(zip(self.ids, self.problem.constants, strict=True)):
             form, subject = constant.constant, constant_subject(self.reactions, j)
             total = coefficient_sum(self.reactions.nu[j], self.feed.in_phase)
-            unit = spell(expected_unit_parts(constant.kind, total)) or "1"
+            unit = self._stated_unit(subject) or spell(expected_unit_parts(constant.kind, total))
             ln = float(np.broadcast_to(form.ln_at(t, subject), t.shape)[0])
             ln_value = ln - math.log(find_unit(unit).factor)
             value = math.exp(ln_value) if abs(ln_value) < LARGEST_EXPONENT else None
@@ -300,9 +325,7 @@ class _Writer:
                 "from": FORMS[type(form)],
             }
             if self.feed.phase == "gas" and constant.kind == "thermodynamic" and total:
-                told[id_]["standard_pressure"] = self.edge.number(
-                    constant.standard_pressure, "pressure"
-                )
+                told[id_]["standard_pressure"] = self._absolute(constant.standard_pressure)
             if isinstance(form, ReactionProperties | LnCorrelation):
                 heat = float(form.enthalpy(self.temperature))
                 told[id_]["enthalpy_of_reaction"] = self.edge.number(heat, "molar_energy")
@@ -312,16 +335,27 @@ class _Writer:
                 )
         return told
 
+    def _stated_unit(self, subject: Subject) -> str | None:
+        """Return the unit in which a constant was stated, if it was."""
+        for where in ((*subject, "constant"), (*subject, "unit"), subject):
+            place = self.edge.places.get(where)
+            if place is not None and place[1] is not None:
+                return place[1]
+        return None
+
+    @property
+    def _heat_dimension(self) -> str:
+        if self.question.per_mole_of_key:
+            return "molar_energy"
+        return "energy" if self.feed.batch else "power"
+
     def _heat(self) -> Json | None:
         heat = self.reached.heat
         if heat is None:
             return None
         told: Json = {}
         if self.problem.hold.startswith("temperature"):
-            dimension = "energy" if self.feed.batch else "power"
-            if self.question.per_mole_of_key:
-                dimension = "molar_energy"
-            told["duty"] = self._number(heat[0], dimension)
+            told["duty"] = self._number(heat[0], self._heat_dimension)
         elif self.feed.temperature is not None:
             told["adiabatic_rise"] = self.edge.number(
                 self.temperature - self.feed.temperature, "temperature_difference"
@@ -376,12 +410,14 @@ class _Writer:
         flow = edge.scales[self.words.flow_dimension]
         columns: dict[str, list[Any]] = {}
         units: dict[str, str] = {}
-        for name, values in (
-            ("temperature", states.temperature),
-            ("pressure", states.pressure),
-        ):
-            scale = edge.scales[name]
-            columns[name] = _cells((values[1:] - scale.offset) / scale.factor)
+        for name, each in (("temperature", states.temperature), ("pressure", states.pressure)):
+            scale, values = edge.scales[name], each[1:]
+            # What is held is known where there is no answer, too.
+            if name == self.problem.over and self.problem.values is not None:
+                values = self.problem.values
+            elif name in self.problem.hold:
+                values = np.full(len(values), each[0])
+            columns[name] = _cells((values - scale.offset) / scale.factor)
             units[name] = scale.unit
         columns["conversion"] = _cells(self.reached.conversion[1:])
         if self.reactions.rank == len(self.ids):
@@ -399,6 +435,10 @@ class _Writer:
                 units[f"{self.words.flow} {name}"] = flow.unit
         if self.question.gas is not None:
             columns["compressibility"] = _cells(states.compressibility[1:])
+        if self.reached.heat is not None and self.problem.hold.startswith("temperature"):
+            scale = edge.scales[self._heat_dimension]
+            columns["duty"] = _cells(self.reached.heat[1:] / scale.factor)
+            units["duty"] = scale.unit
         return Table(columns, units)
 
     def _table(self) -> Table:
@@ -433,25 +473,53 @@ class _Writer:
             ("pressure", p),
         ]
         heat = self._heat()
-        for name, words in (
-            ("duty", "heat supplied (below zero: removed)"),
-            ("adiabatic_rise", "adiabatic rise"),
-        ):
+        for name, words in HEATS.items():
             if heat is not None and name in heat:
                 numbers.append((words, heat[name]))
+        verdict = f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %."
         if self.approach is not None:
-            numbers += [
-                (f"approach of {id_}", None if of is None else of["approach"])
-                for id_, of in self._approach().items()
-            ]
+            for id_, of in self._approach().items():
+                numbers.append((f"approach of {id_}", None if of is None else of["approach"]))
+                if of is not None:
+                    verdict += f" {_short_of(of['approach'], id_)}"
         plots = self._plots() if problem.values is not None else ()
         return Page(
             title=f"Equilibrium of {' and '.join(self.ids)}",
-            verdict=f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %.",
+            verdict=verdict,
             numbers=tuple(numbers),
             plots=plots,
-            tables=((f"Composition at {at}", self._composition()),),
+            tables=(
+                (f"Composition at {at}", self._composition()),
+                (f"Reactions at {at}", self._reactions_table()),
+            ),
         )
+
+    def _reactions_table(self) -> Table:
+        """Return a row for each reaction: how far it goes, and what K it comes from."""
+        flow = self.edge.scales[self.words.flow_dimension]
+        constants = self._constants()
+        columns: dict[str, list[Any]] = {"reaction": list(self.ids)}
+        units: dict[str, str] = {}
+        if self.reactions.rank == len(self.ids):
+            columns["extent"] = _cells(self.states.extents[0] / flow.factor)
+            units["extent"] = flow.unit
+        columns["ln K"] = [constants[id_]["natural_logarithm"]["value"] for id_ in self.ids]
+        columns["K from"] = [constants[id_]["from"] for id_ in self.ids]
+        if self.approach is not None:
+            told = [self._approach()[id_] for id_ in self.ids]
+            temperature = self.edge.scales["temperature"]
+            name = "outlet at equilibrium at"
+            columns[name] = [
+                None if of is None else of["equilibrium_temperature"]["value"] for of in told
+            ]
+            units[name] = temperature.unit
+            columns["Q/K of outlet"] = [
+                None
+                if of is None or of["quotient_over_constant"] is None
+                else of["quotient_over_constant"]["value"]
+                for of in told
+            ]
+        return Table(columns, units)
 
     def _plots(self) -> tuple[Plot, ...]:
         table, over = self._sweep(), self.problem.over
@@ -460,7 +528,6 @@ class _Writer:
         x_label = f"{over} [{table.units[over]}]"
         y = table.columns["conversion"]
         key = self.names[self.problem.key]
-        fractions = [name for name in table.columns if name.startswith("mole fraction ")]
         plots = [
             Plot(
                 f"Conversion of {key} against {over}",
@@ -471,32 +538,58 @@ class _Writer:
                 table,
             )
         ]
-        if fractions:
-            largest = max(fractions, key=lambda name: max(v or 0.0 for v in table.columns[name]))
-            name = largest.removeprefix("mole fraction ")
-            plots.append(
-                Plot(
-                    f"Composition against {over}",
-                    x_label,
-                    "mole fraction",
-                    tuple(
-                        Curve(f.removeprefix("mole fraction "), x, table.columns[f])
-                        for f in fractions
-                    ),
-                    _course(
-                        f"of {len(fractions)} substances {name} comes to the largest share; its"
-                        " mole fraction",
-                        table.columns[largest],
-                        x,
-                        table.units[over],
-                    ),
-                    Table(
-                        {n: table.columns[n] for n in (over, *fractions)},
-                        {over: table.units[over]},
-                    ),
-                )
-            )
+        inside = self.feed.in_phase
+        known = not self.feed.solvent_unknown
+        named = list(enumerate(self.names))
+        fractions = {n: f"mole fraction {n}" for i, n in named if inside[i] and known}
+        flows = {n: f"{self.words.flow} {n}" for i, n in named if not (inside[i] and known)}
+        for title, columns in (("Composition", fractions), ("What is not in the gas", flows)):
+            if self.feed.phase == "liquid" and columns is flows:
+                title = "Flows"
+            if columns:
+                plots.append(self._share_plot(f"{title} against {over}", columns, table, x_label))
         return tuple(plots)
+
+    def _share_plot(
+        self, title: str, columns: Mapping[str, str], table: Table, x_label: str
+    ) -> Plot:
+        """Return a plot of one column for each of several substances."""
+        over = self.problem.over
+        assert over is not None
+        x = table.columns[over]
+        name, column = max(
+            columns.items(), key=lambda each: max(v or 0.0 for v in table.columns[each[1]])
+        )
+        what = column.removesuffix(f" {name}")
+        unit = table.units.get(column, "1")
+        shown = (over, *columns.values())
+        return Plot(
+            title,
+            x_label,
+            what if unit == "1" else f"{what} [{unit}]",
+            tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
+            _course(
+                f"the largest {what} is that of {name}, which",
+                table.columns[column],
+                x,
+                table.units[over],
+                unit,
+            ),
+            Table(
+                {n: table.columns[n] for n in shown},
+                {n: table.units[n] for n in shown if n in table.units},
+            ),
+        )
+
+
+def _short_of(approach: Json, reaction: str) -> str:
+    """Say what an approach means."""
+    size = {**approach, "value": abs(approach["value"])}
+    side = "short of" if approach["value"] >= 0 else "beyond"
+    told_ = f"The measured outlet is {told(size)} {side} the equilibrium of {reaction}"
+    if abs(approach["value"]) <= 2 * approach["u"]:
+        told_ += ", which its readings cannot tell from it"
+    return told_ + "."
 
 
 def _finite(value: Any) -> float | None:
@@ -507,17 +600,23 @@ def _cells(values: FloatArray) -> list[float | None]:
     return [value if math.isfinite(value) else None for value in values.tolist()]
 
 
-def _course(what: str, y: Sequence[float | None], x: Sequence[float | None], unit: str) -> str:
+def _course(
+    what: str,
+    y: Sequence[float | None],
+    x: Sequence[float | None],
+    x_unit: str,
+    y_unit: str = "1",
+) -> str:
     """Say how a curve runs, for who cannot see it."""
     there = [(a, b) for a, b in zip(x, y, strict=True) if a is not None and b is not None]
+    begun = f"{what[0].upper()}{what[1:]}"
     if not there:
-        return f"{what[0].upper()}{what[1:]} is not known anywhere on the sweep."
+        return f"{begun} is not known anywhere on the sweep."
+    unit = "" if y_unit == "1" else f" {y_unit}"
     (x0, y0), (x1, y1) = there[0], there[-1]
     high = max(there, key=lambda point: point[1])
-    told = (
-        f"{what[0].upper()}{what[1:]} goes from {y0:.4g} at {x0:.5g} {unit} to {y1:.4g} at"
-        f" {x1:.5g} {unit}"
-    )
+    said = f"{begun} goes from {y0:.4g}{unit} at {x0:.5g} {x_unit} to"
+    said += f" {y1:.4g}{unit} at {x1:.5g} {x_unit}"
     if high[1] > 1.001 * max(y0, y1) + 1e-12:
-        told += f", with {high[1]:.4g} at {high[0]:.5g} {unit} as the most"
-    return f"{told}."
+        said += f", with {high[1]:.4g}{unit} at {high[0]:.5g} {x_unit} as the most"
+    return f"{said}."

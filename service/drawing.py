@@ -20,7 +20,7 @@ from schemas.page import Curve, Plot
 COLOURS = ("#0072b2", "#d55e00", "#009e73", "#cc79a7", "#56b4e9", "#e69f00", "#000000")
 DASHES = ("-", "--", "-.", ":", (0, (6, 1, 1, 1, 1, 1)))
 MARKERS = ("o", "s", "^", "D", "v", "P", "X")
-WIDTH, HEIGHT = 7.2, 3.9
+WIDTH, HEIGHT = 7.2, 4.2
 """Inches, of a plot that fits an A4 page."""
 MOST_NAMED = 12
 """Curves named beside the plot in one column; more take two."""
@@ -43,16 +43,11 @@ def _library() -> Any:
             "svg.hashsalt": "molwright",  # the same plot is the same bytes
             "text.parse_math": False,  # a caller's name may hold a dollar sign
             "font.family": "sans-serif",
-            "font.size": 10,
+            "font.size": 11.5,  # also read on a phone
             "axes.formatter.useoffset": False,
         }
     )
     return Figure
-
-
-def prepare() -> None:
-    """Load what drawing needs, before a process is copied."""
-    _library()
 
 
 def svg(plot: Plot) -> str:

@@ -171,6 +171,19 @@ def _warm_up(app: flask.Flask) -> None:
             # Examples are computed whatever the largest body is that callers may send.
             context.request.max_content_length = MAX_BODY
             app.dispatch_request()
+    _warm_up_pages(app)
+
+
+def _warm_up_pages(app: flask.Flask) -> None:
+    """Make one page with a plot: what draws takes most of a second to load."""
+    from schemas.examples import EXAMPLES
+
+    example = next(e for e in EXAMPLES if e.status == 200 and "sweep" in e.request)
+    path = f"/v1/{example.operation}"
+    with app.test_request_context(
+        path, method="POST", json=example.request, headers={"Accept": "text/html"}
+    ):
+        app.dispatch_request()
 
 
 class _Logger(glogging.Logger):  # type: ignore[misc]

@@ -15,6 +15,7 @@ from enum import IntEnum
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
+from core.equilibrium.budget import Budget
 from core.equilibrium.newton import IntArray, System, find_composition
 from core.equilibrium.one_reaction import OneReaction, find_extent
 from core.equilibrium.reaction_space import ReactionSpace, Steps, reach
@@ -46,6 +47,8 @@ class Task:
         Of every reaction as stated, in such activities.
     feed : ndarray, shape (N, S)
         Not negative, some of it above zero.
+    budget : Budget or None
+        Of the work that all of them may take.
     """
 
     space: ReactionSpace
@@ -53,6 +56,7 @@ class Task:
     per_total: bool
     ln_k: FloatArray
     feed: FloatArray
+    budget: Budget | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -193,6 +197,8 @@ def _resume(search: _Search, start: Composition, scale: FloatArray) -> None:
 def _solve_group(search: _Search, pattern: BoolArray, rows: IntArray) -> IntArray:
     """Solve samples in which the same substances are there; return those to look at again."""
     task = search.task
+    if task.budget is not None:
+        task.budget.spend(float(pattern.size * (100 * len(rows) + pattern.size)))
     steps = task.space.steps(~pattern)
     among_pure = task.space.steps(~pattern | task.in_mixture) if len(search.pure) > 1 else None
     if among_pure is not None and len(among_pure.nu):
@@ -294,6 +300,7 @@ def _solve_several(search: _Search, steps: Steps, pattern: BoolArray, rows: IntA
         task.ln_k[rows] @ steps.weights.T,
         search.held[block],
         np.log(search.spent_below[rows]),
+        task.budget,
     )
     start = np.log(spread_out(search.amounts[block], nu))
     warm = search.warm[rows]

@@ -14,6 +14,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
+from core.equilibrium.budget import CALL, work_of_state
 from core.equilibrium.composition import Composition, Status, Task, find
 from core.equilibrium.newton import IntArray
 from core.equilibrium.problem import Equilibrium, EquilibriumProblem
@@ -28,6 +29,8 @@ CONSISTENT = 1e-6
 _FUGACITIES_SETTLED = 5e-12
 _MOST_ROUNDS = 80
 _TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
+_RUNGS = 30  # between the bounds of a temperature that is sought, where there is no answer at one
+_HALVINGS = 20
 
 
 @np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore")
@@ -43,7 +46,7 @@ def solve_equilibrium(problem: EquilibriumProblem) -> Equilibrium:
     ------
     Refused
         For the problem as a whole: ``inconsistent-constants``, ``no-flow``,
-        ``flow-negative``. What concerns a sample is in ``faults``:
+        ``flow-negative``, ``compute-budget``. What concerns a sample is in ``faults``:
         ``equilibrium-not-found``, ``mixture-vanishes``, ``no-such-temperature``,
         ``inconsistent-constants``.
     """
@@ -184,9 +187,21 @@ class _Solver:
     def at(self, temperature: FloatArray, rows: IntArray) -> _Point:
         """Return the equilibrium of some samples at a temperature each."""
         problem = self.problem
+        if problem.budget is not None:
+            reactions, width = problem.reactions.nu.shape
+            # The terms of a constant, of an enthalpy.
+            each = 100 * len(rows) + 0.2 * CALL
+            problem.budget.spend((4 * reactions + width) * each)
         ln_k = self.ln_constants(temperature, rows)
         ideal = ln_k - self.of_units(temperature, rows)
-        task = Task(self.space, self.in_mixture, self.per_total, ideal, problem.feed[rows])
+        task = Task(
+            self.space,
+            self.in_mixture,
+            self.per_total,
+            ideal,
+            problem.feed[rows],
+            problem.budget,
+        )
         if problem.mixture.equation is None or problem.mixture.phase == "liquid":
             found = find(task, self.last.samples(rows))
             self.keep(rows, found)
@@ -212,6 +227,8 @@ class _Solver:
         iterations = np.zeros(len(rows), dtype=np.intp)
         previous: tuple[FloatArray, FloatArray] | None = None
         for _ in range(_MOST_ROUNDS):
+            if task.budget is not None:
+                task.budget.spend(work_of_state(len(on), task.feed.shape[1]))
             part = replace(task, ln_k=task.ln_k[on] - shift[on], feed=task.feed[on])
             now = find(part, found.samples(on))
             found.ln_amounts[on], found.status[on] = now.ln_amounts, now.status
@@ -311,13 +328,12 @@ class _Solver:
         count = len(problem.feed)
         wanted = _given(problem.energy, count)
         every = np.arange(count)
-        ends = []
-        for end in problem.temperatures:
-            energy, sound = self.energy_at(np.full(count, end), every)
-            for at in np.flatnonzero(~sound).tolist():
-                self.faults.setdefault(at, self.not_found(at, end))
-            ends.append(energy - wanted)
-        low, high = ends
+        lower, low, beneath = self.last_sound(wanted, every, *problem.temperatures)
+        upper, high, above = self.last_sound(wanted, every, *problem.temperatures[::-1])
+        for at in np.flatnonzero(~(beneath & above)).tolist():
+            end = 0 if above[at] else 1
+            self.at(np.full(1, problem.temperatures[end]), every[at : at + 1])
+            self.faults.setdefault(at, self.not_found(at, problem.temperatures[end]))
         for at in np.flatnonzero(~((low <= 0) & (high >= 0))).tolist():
             self.faults.setdefault(
                 at,
@@ -344,11 +360,48 @@ class _Solver:
                 self.faults.setdefault(int(mine[at]), self.not_found(int(mine[at]), float(t[at])))
             return np.where(sound, energy - wanted[mine], 0.0)
 
-        lower, upper = (np.full(len(rows), end) for end in problem.temperatures)
-        found[rows] = find_root(excess, lower, upper, subject=problem.subject)
+        found[rows] = find_root(excess, lower[rows], upper[rows], subject=problem.subject)
         for at in self.faults:
             found[at] = np.nan
         return found
+
+    def last_sound(
+        self, wanted: FloatArray, rows: IntArray, first: float, towards: float
+    ) -> tuple[FloatArray, FloatArray, BoolArray]:
+        """Return the temperatures nearest to ``first`` at which there is an answer, to bracket by.
+
+        Mostly that is ``first`` itself. Where all of the gas would be solid there, or a real
+        gas liquid, some way ``towards`` the other end, and no further than is needed.
+
+        Returns
+        -------
+        temperature, excess : ndarray, shape (N,)
+            K; of the energy there over the one wanted, J.
+        found : ndarray of bool, shape (N,)
+            Whether there is an answer that leaves the wanted energy beyond it.
+        """
+        t = np.full(len(rows), first)
+        energy, sound = self.energy_at(t, rows)
+        excess = energy - wanted
+        side = np.sign(towards - first)
+        bad, good = t.copy(), np.full(len(rows), np.nan)
+        live = np.flatnonzero(~sound)
+        for step in range(_RUNGS + _HALVINGS):
+            if not len(live):
+                break
+            rung = first + (towards - first) * min(step + 1, _RUNGS) / _RUNGS
+            trial = np.where(np.isnan(good[live]), rung, 0.5 * (bad[live] + good[live]))
+            energy, fine = self.energy_at(trial, rows[live])
+            bad[live[~fine]] = trial[~fine]
+            here = live[fine]
+            good[here] = t[here] = trial[fine]
+            excess[here] = energy[fine] - wanted[here]
+            sound[here] = excess[here] * side <= 0
+            on = ~sound[live]
+            if step + 1 >= _RUNGS:
+                on &= ~np.isnan(good[live])
+            live = live[on]
+        return t, excess, sound
 
     def not_found(self, row: int, temperature: float) -> Fault:
         """Say why a sample has no answer at a temperature."""
@@ -416,6 +469,9 @@ class _Solver:
         amounts = np.exp(ln_amounts)
         still = (nu == 0).all(axis=0)
         amounts[:, still] = np.where(np.isnan(amounts), np.nan, problem.feed)[:, still]
+        # What rounding leaves of no change at all is none.
+        same = np.abs(amounts - problem.feed) <= 4 * np.finfo(float).eps * problem.feed
+        amounts = np.where(same.all(axis=1, keepdims=True), problem.feed, amounts)
         change = amounts - problem.feed
         extents = _extents(nu, change, np.maximum(amounts, problem.feed))
         conserved = self.space.conserved

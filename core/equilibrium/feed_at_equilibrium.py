@@ -11,6 +11,7 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
+from core.equilibrium.budget import Budget
 from core.equilibrium.constants import StatedConstants
 from core.equilibrium.equilibrium import solve_equilibrium
 from core.equilibrium.newton import IntArray
@@ -21,12 +22,12 @@ from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConsta
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation
-from core.real_gas.remarks import remark_on_gas
+from core.real_gas.remarks import remark_on_constants, remark_on_gas
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import temperatures_known
-from core.thermochemistry.reaction_properties import beyond_range
+from core.thermochemistry.reaction_properties import ReactionProperties, beyond_range
 
 Over = Literal["temperature", "pressure"]
 
@@ -149,9 +150,9 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     Refused
         ``key-absent``, ``condition-missing``, ``hold-needs-batch``,
         ``sweep-does-not-fit``, ``constant-at-one-temperature``,
-        ``equilibrium-constant-does-not-fit``, what the constants refuse, and
-        what :func:`core.equilibrium.equilibrium.solve_equilibrium` does of the
-        state asked for.
+        ``equilibrium-constant-does-not-fit``, ``field-not-used``,
+        ``compute-budget``, what the constants refuse, and of the state asked for
+        what :func:`core.equilibrium.equilibrium.solve_equilibrium` does.
     """
     reactions, feed = problem.reactions, problem.feed
     _check(problem)
@@ -161,6 +162,10 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     volume = _volume(problem)
     equation = problem.equation if feed.phase == "gas" else None
     z = _compressibility(problem, equation)
+    start, faults = _energy_of_feed(problem, temperature, z)
+    adiabatic = not problem.hold.startswith("temperature")
+    if adiabatic and start is None:
+        raise Refused(faults)
     asked = EquilibriumProblem(
         reactions=reactions,
         mixture=Mixture(feed.in_phase, feed.phase, STANDARD_PRESSURE, equation),
@@ -170,34 +175,40 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         temperature=temperature,
         pressure=pressure,
         volume=None if volume is None else np.full(count, volume),
-        subject=("feed",),
+        budget=Budget(subject=("feed",) if problem.over is None else ("sweep",)),
     )
-    start = None
-    beyond = _beyond_range(problem, temperature)
-    if beyond and not problem.hold.startswith("temperature"):
-        raise Refused(beyond)
-    if problem.properties is not None and feed.temperature is not None and not beyond:
-        start = _energy(problem, feed.flows, feed.temperature, feed.pressure, z)
+    if adiabatic:
+        assert problem.properties is not None
         asked = replace(
             asked,
-            energy=None if start is None else np.full(count, start),
+            energy=np.full(count, start),
             enthalpies=_Enthalpies(problem.properties),
             temperatures=temperatures_known(problem.properties),
         )
     states = solve_equilibrium(asked)
     if 0 in states.faults:
-        raise Refused(states.faults[0])
-    key_change = states.extents @ reactions.nu[:, problem.key]
+        fault = states.faults[0]
+        raise Refused([fault if fault.subject else replace(fault, subject=("feed",))])
     reached = FeedReached(
         problem=problem,
         states=states,
-        conversion=-key_change / feed.flows[problem.key],
+        conversion=_conversion(problem, states),
         range=conversion_range(_both_ways(reactions), problem.key, feed.flows),
         compressibility_of_feed=z,
         heat=None if start is None else _heat(problem, states, start),
         notes=(),
     )
-    return replace(reached, notes=(*_without_heat(beyond), *_notes(reached)))
+    return replace(reached, notes=(*_without_heat(faults), *_notes(reached)))
+
+
+def _conversion(problem: FeedAtEquilibrium, states: Equilibrium) -> FloatArray:
+    """Return the conversion of the key, by what keeps more digits: its change, or what is left."""
+    fed = problem.feed.flows[problem.key]
+    change = states.extents @ problem.reactions.nu[:, problem.key]
+    by_change = 0.0 - change / fed
+    by_what_is_left = 1.0 - states.amounts[:, problem.key] / fed
+    conversion: FloatArray = np.where(by_change > 0.5, by_what_is_left, by_change)
+    return conversion
 
 
 def _both_ways(reactions: ReactionSet) -> ReactionSet:
@@ -233,6 +244,23 @@ def _check(problem: FeedAtEquilibrium) -> None:
             over=problem.over,
             hold=problem.hold,
         )
+    if problem.over == "pressure" and feed.phase == "liquid":
+        raise refuse(
+            "sweep-does-not-fit",
+            ("sweep", "over"),
+            "found a sweep over {over} of a liquid, whose equilibrium does not hang on it; sweep"
+            " the temperature",
+            over=problem.over,
+        )
+    if feed.phase == "gas" and feed.compressibility != 1.0:
+        raise refuse(
+            "field-not-used",
+            ("feed", "compressibility"),
+            "found a compressibility of {z}, and an equilibrium takes that of the gas model,"
+            " which has fugacities to go with it; leave it out, and name a gas model that is not"
+            " ideal where it counts",
+            z=f"{feed.compressibility:.6g}",
+        )
     for name, holds in (("temperature", "temperature-"), ("pressure", "-pressure")):
         if getattr(problem, name) is not None and holds not in problem.hold:
             raise refuse(
@@ -252,6 +280,15 @@ def _check(problem: FeedAtEquilibrium) -> None:
     varies = problem.over == "temperature" or not problem.hold.startswith("temperature")
     if varies:
         check_temperature_dependence(problem)
+    if problem.over == "temperature" and problem.values is not None:
+        faults = {
+            fault.detail + str(fault.facts.get("substance")): fault
+            for constant in problem.constants
+            if isinstance(constant.constant, ReactionProperties)
+            for fault in beyond_range(constant.constant.properties, problem.values, ("sweep",))
+        }
+        if faults:
+            raise Refused(list(faults.values()))
 
 
 def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
@@ -268,9 +305,7 @@ def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
             constant_subject(problem.reactions, j),
             "one value is stated of the equilibrium constant, and the question needs it over"
             " temperature: state it 'at' a temperature with the 'enthalpy' of the reaction, as a"
-            ' correlation, or as {{"from": "thermochemistry"}}'.replace("{{", "{").replace(
-                "}}", "}"
-            ),
+            ' correlation, or with "from": "thermochemistry"',
         )
         for j, constant in enumerate(problem.constants)
         if not constant.constant.needs_temperature
@@ -332,8 +367,7 @@ def _volume(problem: FeedAtEquilibrium) -> float | None:
             "volume is held and not known; state it under 'at', or temperature and pressure of the"
             " feed",
         )
-    z = _compressibility(problem, problem.equation) / feed.compressibility
-    return float(own) * z
+    return float(own) * _compressibility(problem, problem.equation)
 
 
 def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None) -> float:
@@ -349,26 +383,51 @@ def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None)
     return float(state.compressibility[0])
 
 
+def _energy_of_feed(
+    problem: FeedAtEquilibrium, temperature: FloatArray | None, z: float
+) -> tuple[float | None, list[Fault]]:
+    """Return what energy the feed has, W (batch: J); None, and why, where no heat can be told."""
+    feed = problem.feed
+    if problem.properties is None:
+        return None, []  # said when it was read
+    lacking = [
+        name
+        for name in ("temperature", "pressure")
+        if getattr(feed, name) is None and (name == "temperature" or problem.equation is not None)
+    ]
+    if lacking:
+        return None, [
+            Fault(
+                "condition-missing",
+                ("feed", name),
+                "the {name} at which the feed comes is not stated, on which its enthalpy hangs;"
+                " state it of the feed",
+                {"name": name},
+            )
+            for name in lacking
+        ]
+    faults = _beyond_range(problem, temperature)
+    if faults:
+        return None, faults
+    t = np.array([feed.temperature], dtype=float)
+    p = np.array([np.nan if feed.pressure is None else feed.pressure])
+    return float(_energies(problem, feed.flows[None], t, p, np.array([z]))[0]), []
+
+
 def _beyond_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> list[Fault]:
     """Return the faults of temperatures beyond the heat capacities, each at its own place."""
-    if problem.properties is None or problem.feed.temperature is None:
-        return []
-    asked: list[tuple[Subject, FloatArray]] = [
-        (("feed", "temperature"), np.array([problem.feed.temperature]))
-    ]
-    if temperature is not None:
+    feed = problem.feed
+    assert problem.properties is not None
+    asked: list[tuple[Subject, FloatArray]] = []
+    if feed.temperature is not None:
+        asked.append((("feed", "temperature"), np.array([feed.temperature])))
+    if temperature is not None and problem.temperature is not None:
         asked.append((("at", "temperature"), temperature[:1]))
+    if temperature is not None and problem.over == "temperature":
         asked.append((("sweep",), temperature[1:]))
-    faults = [
-        fault
-        for subject, at in asked
-        if len(at)
-        for fault in beyond_range(problem.properties, at, subject)
+    return [
+        fault for subject, at in asked for fault in beyond_range(problem.properties, at, subject)
     ]
-    # What is not stated otherwise is the feed's, and one place is enough to say so.
-    if len(asked) > 1 and problem.temperature is None:
-        faults = [fault for fault in faults if fault.subject != ("at", "temperature")]
-    return faults
 
 
 def _without_heat(beyond: list[Fault]) -> Iterator[Note]:
@@ -383,27 +442,30 @@ def _without_heat(beyond: list[Fault]) -> Iterator[Note]:
         )
 
 
-def _energy(
+def _energies(
     problem: FeedAtEquilibrium,
     flows: FloatArray,
-    temperature: float,
-    pressure: float | None,
-    z: float,
-) -> float | None:
-    """Enthalpy of the feed, or its internal energy where volume is held, W (batch: J)."""
-    feed = problem.feed
+    temperature: FloatArray,
+    pressure: FloatArray,
+    compressibility: FloatArray,
+) -> FloatArray:
+    """Enthalpies, or internal energies where volume is held, W (batch: J), shape (N,).
+
+    Not a number where that of a real gas hangs on a pressure that is none.
+    """
     assert problem.properties is not None
-    t = np.array([temperature])
-    each = _Enthalpies(problem.properties).enthalpies(t, np.zeros(1, dtype=np.intp))[0]
-    total = float(flows @ each)
-    gas = float(feed.phase_total) if feed.phase == "gas" else 0.0
-    if problem.equation is not None and feed.phase == "gas":
-        if pressure is None:
-            return None
-        state = problem.equation.state(t, np.array([pressure]), flows[None, feed.in_phase])
-        total += gas * float(state.residual_enthalpy[0])
+    inside = problem.feed.in_phase
+    rows = np.arange(len(flows))
+    each = _Enthalpies(problem.properties).enthalpies(temperature, rows)
+    total: FloatArray = (flows * each).sum(axis=1)
+    if problem.feed.phase == "liquid":
+        return total
+    gas = flows[:, inside].sum(axis=1)
+    if problem.equation is not None:
+        state = problem.equation.state(temperature, pressure, flows[:, inside])
+        total = total + gas * state.residual_enthalpy
     if problem.hold.endswith("volume"):
-        total -= z * gas * GAS_CONSTANT * temperature
+        total = total - compressibility * gas * GAS_CONSTANT * temperature
     return total
 
 
@@ -412,17 +474,9 @@ def _heat(problem: FeedAtEquilibrium, states: Equilibrium, start: float) -> Floa
     if not problem.hold.startswith("temperature"):
         return np.where(np.isnan(states.temperature), np.nan, 0.0)
     heat = np.full(len(states.amounts), np.nan)
-    for k in np.flatnonzero(~np.isnan(states.temperature)).tolist():
-        pressure = float(states.pressure[k])
-        inside = replace(problem.feed, flows=states.amounts[k])
-        end = _energy(
-            replace(problem, feed=inside),
-            states.amounts[k],
-            float(states.temperature[k]),
-            pressure if np.isfinite(pressure) else None,
-            float(states.compressibility[k]),
-        )
-        heat[k] = np.nan if end is None else end - start
+    good = ~np.isnan(states.temperature)
+    each = (states.temperature, states.pressure, states.compressibility)
+    heat[good] = _energies(problem, states.amounts[good], *(v[good] for v in each)) - start
     return heat
 
 
@@ -470,9 +524,16 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
         good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))
         inside = states.amounts[np.ix_(good, problem.feed.in_phase)]
         at = states.temperature[good], states.pressure[good], inside
+        ideal = problem.equation is None
+        seen = equation.state(*at)
+        condenses = would_condense(equation, *at) if ideal else states.may_condense[good]
         yield from remark_on_gas(
-            equation.state(*at).compressibility,
-            would_condense(equation, *at),
-            taken_as_ideal=problem.equation is None,
-            subject=("gas_model",),
+            seen.compressibility, condenses, taken_as_ideal=ideal, subject=("gas_model",)
         )
+        if ideal:
+            nu = reactions.nu[:, problem.feed.in_phase]
+            yield from remark_on_constants(
+                seen.ln_fugacity_coefficients @ nu.T,
+                [reaction.id for reaction in reactions.reactions],
+                ("gas_model",),
+            )

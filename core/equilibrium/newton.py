@@ -25,6 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
+from core.equilibrium.budget import CALL, Budget
 from core.numerics.linear import solve_stack
 
 IntArray = NDArray[np.intp]
@@ -65,6 +66,8 @@ class System:
     spent_below : ndarray, shape (N,)
         ln of the amount from which on a pure phase that a step would take below
         zero is taken as used up.
+    budget : Budget or None
+        Of the work that all of them may take.
     """
 
     nu: FloatArray
@@ -73,6 +76,7 @@ class System:
     ln_k: FloatArray
     held: FloatArray
     spent_below: FloatArray
+    budget: Budget | None = None
 
     @property
     def all_from_pure(self) -> bool:
@@ -195,7 +199,10 @@ def _find_block(system: System, start: FloatArray) -> Outcome:
     rows = np.arange(count)
     part, ln_n = system, ln_all.copy()
     basis = _choose(part, ln_n)
+    r, width = system.nu.shape
     for step in range(MOST_ITERATIONS):
+        if system.budget is not None:
+            system.budget.spend(float(len(rows) * r * (r + 10) * width))
         affinity = _affinities(part, basis, ln_n)
         settled: BoolArray = np.asarray((np.abs(affinity) <= _SETTLED).all(axis=1))
         near = np.flatnonzero(~settled & (np.abs(affinity) < _NEARLY).all(axis=1))
@@ -240,6 +247,8 @@ def _choose(system: System, ln_n: FloatArray) -> _Basis:
     """Take the scarcest substances that reactions can form independently as the minor ones."""
     count, width = ln_n.shape
     r = len(system.nu)
+    if system.budget is not None:
+        system.budget.spend(1.5 * count * r * r * (width + r) + 0.2 * r * CALL)
     weight = np.where(system.in_mixture, ln_n, np.inf)
     lead = np.broadcast_to(system.nu, (count, r, width)).copy()
     lead = np.concatenate([lead, np.broadcast_to(np.eye(r), (count, r, r))], axis=2)

@@ -11,7 +11,11 @@ from core.arrays import BoolArray, FloatArray
 from core.equilibrium.approach import approach_temperature
 from core.equilibrium.constants import StatedConstants
 from core.errors import Fact, Note, Subject
-from core.rates.equilibrium_constant import EquilibriumConstant, LnCorrelation
+from core.rates.equilibrium_constant import (
+    EquilibriumConstant,
+    LnCorrelation,
+    coefficient_sum,
+)
 from core.real_gas.cubic import CubicEquation
 from core.streams.metered import Measurement
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
@@ -87,6 +91,23 @@ def approaches(
         subject = constants.subjects[j]
         lacking = np.flatnonzero((nu != 0) & in_mixture & ~known)
         id_ = reactions.reactions[j].id
+        order = coefficient_sum(nu, in_mixture)
+        if order and constants.phase == "gas":
+            # Its mole fractions hang on all that is in the gas, inert or not.
+            untold = np.flatnonzero(in_mixture & np.isnan(outlet.flows))
+            lacking = np.union1d(lacking, untold)
+        if not constant.constant.needs_temperature:
+            found.append(None)
+            notes.append(
+                _none(
+                    subject,
+                    id_,
+                    "one value is stated of its constant, which is the same at every temperature;"
+                    " state it 'at' a temperature with the 'enthalpy' of the reaction, as a"
+                    " correlation, or from thermochemistry",
+                )
+            )
+            continue
         if len(lacking):
             names = ", ".join(reactions.names[i] for i in lacking.tolist())
             found.append(None)
@@ -102,7 +123,6 @@ def approaches(
         ln_q = float(nu @ np.where(nu != 0, ln_activities, 0.0))
         slope = nu @ np.where((nu != 0)[:, None], gradients, 0.0)
         variance = max(float(slope @ outlet.covariance @ slope), 0.0)
-        order = float(nu[in_mixture].sum())
         if outlet.pressure is not None and constants.phase == "gas":
             variance += (order * outlet.pressure.u / outlet.pressure.value) ** 2
         one = _one(constants, j, constant, outlet.temperature, ln_q, variance**0.5)
@@ -125,7 +145,7 @@ def _activities(
     gradients = outlet.forms / flows[:, None]
     if constants.phase == "gas":
         assert outlet.pressure is not None
-        total = np.nansum(flows)
+        total = outlet.flows[inside].sum()
         each = each - np.log(total)
         each = each + np.log(outlet.pressure.value / constants.standard_pressure)
         gradients = gradients - outlet.forms[inside].sum(axis=0) / total
@@ -133,7 +153,7 @@ def _activities(
             state = equation.state(
                 np.array([outlet.temperature.value]),
                 np.array([outlet.pressure.value]),
-                np.nan_to_num(flows[inside])[None],
+                np.maximum(outlet.flows[inside], 0.0)[None],
             )
             each[inside] += state.ln_fugacity_coefficients[0]
     elif outlet.volume is not None:
@@ -165,18 +185,20 @@ def _one(
         fault = found.faults[0]
         return _none(subject, id_, fault.detail, fault.facts)
     t_eq = float(found.equilibrium_temperature[0])
-    around = ln_k(np.array([t_eq - _STEP, t_eq + _STEP, temperature.value]))
+    t = temperature.value
+    around = ln_k(np.array([t_eq - _STEP, t_eq + _STEP, t - _STEP, t, t + _STEP]))
     slope = float(around[1] - around[0]) / (2 * _STEP)
     if slope == 0:
-        return _none(subject, id_, "its constant does not change with temperature")
+        return _none(subject, id_, "its constant does not change with temperature there")
     u_eq = u / abs(slope)
+    of_temperature = float(around[4] - around[2]) / (2 * _STEP) * temperature.u
     return ReactionApproach(
         float(found.approach[0]),
         float(np.hypot(u_eq, temperature.u)),
         t_eq,
         u_eq,
-        ln_q - float(around[2]),
-        u,
+        ln_q - float(around[3]),
+        float(np.hypot(u, of_temperature)),
     )
 
 

@@ -6,6 +6,7 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 from core.arrays import BoolArray, FloatArray
+from core.equilibrium.budget import Budget
 from core.equilibrium.constants import Constants, Enthalpies
 from core.equilibrium.newton import IntArray
 from core.errors import Fault, Subject
@@ -67,6 +68,8 @@ class EquilibriumProblem:
         K, between which the temperature is sought under an energy hold.
     subject : Subject
         Names the problem in a fault.
+    budget : Budget or None
+        Of the work that all samples together may take; None: no bound.
     """
 
     reactions: ReactionSet
@@ -81,6 +84,7 @@ class EquilibriumProblem:
     enthalpies: Enthalpies | None = None
     temperatures: tuple[float, float] = (200.0, 3000.0)
     subject: Subject = ()
+    budget: Budget | None = None
 
 
 @dataclass(frozen=True, eq=False)

@@ -39,14 +39,16 @@ def would_condense(
         1 + equation.acentric_factor
     ) * (1 - reduced)
     ln_trial = np.log(y) - ln_wilson
+    on = np.arange(len(y))
     for _ in range(_STEPS):
-        top = ln_trial.max(axis=1, keepdims=True)
-        trial = np.exp(ln_trial - top)
-        liquid = equation.state(temperature, pressure, trial)
-        following = np.where(y > 0, ln_fugacity - liquid.ln_fugacity_coefficients, -np.inf)
-        moved = np.abs(np.where(y > 0, following - ln_trial, 0.0)).max()
-        ln_trial = following
-        if moved < 1e-9:
+        own = ln_trial[on]
+        trial = np.exp(own - own.max(axis=1, keepdims=True))
+        liquid = equation.state(temperature[on], pressure[on], trial)
+        there = y[on] > 0
+        ln_trial[on] = np.where(there, ln_fugacity[on] - liquid.ln_fugacity_coefficients, -np.inf)
+        moved = np.abs(np.where(there, ln_trial[on] - own, 0.0)).max(axis=1)
+        on = on[~(moved < 1e-9)]
+        if not len(on):
             break
     distance = np.log(np.exp(ln_trial).sum(axis=1))
     apart = np.abs(np.where(y > 0, ln_trial - np.log(y), 0.0)).max(axis=1) > 1e-3

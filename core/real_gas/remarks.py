@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Amount, Note, Subject
+from core.errors import Note, Subject
 
 NEARLY_IDEAL = (0.95, 1.05)
 """Z between which a gas passes for ideal."""
+SAME_CONSTANT = 0.05
+"""|ln| of what fugacity coefficients make of a constant, up to which it passes for the same."""
 
 
 def remark_on_gas(
@@ -33,10 +35,10 @@ def remark_on_gas(
             yield Note(
                 "gas-not-ideal",
                 "the gas was taken as ideal, and an equation of state gives Z = {z}: volumes are"
-                " off by {error}. Ask for one of the other gas models.",
+                " off by {error} %. Ask for one of the other gas models.",
                 "warning",
                 subject,
-                {"z": f"{worst:.3f}", "error": Amount(1 / worst - 1)},
+                {"z": f"{worst:.3f}", "error": f"{100 * (1 / worst - 1):.2g}"},
             )
     if condenses.any():
         yield Note(
@@ -48,3 +50,30 @@ def remark_on_gas(
             subject,
             {"count": int(condenses.sum()), "samples": len(condenses)},
         )
+
+
+def remark_on_constants(
+    shift: FloatArray, reactions: Sequence[str], subject: Subject
+) -> Iterator[Note]:
+    """Remark on equilibrium constants that fugacity coefficients would change.
+
+    Parameters
+    ----------
+    shift : ndarray, shape (N, R)
+        Sum of the coefficients times the logarithms of the fugacity coefficients.
+    reactions : sequence of str, length R
+    subject : Subject
+    """
+    size = np.where(np.isfinite(shift), np.abs(shift), 0.0)
+    if not size.size or size.max() <= SAME_CONSTANT:
+        return
+    row, j = np.unravel_index(int(np.argmax(size)), size.shape)
+    yield Note(
+        "fugacities-not-ideal",
+        "the gas was taken as ideal, and by an equation of state its fugacities make the"
+        " equilibrium constant of {reaction}, in partial pressures, {factor} times what was used."
+        " Ask for one of the other gas models.",
+        "warning",
+        subject,
+        {"reaction": reactions[int(j)], "factor": f"{float(np.exp(-shift[row, j])):.3g}"},
+    )

@@ -14,6 +14,7 @@ from service.statuses import STATUSES
 from tests.support import SHIFT, assert_refused, changed, post
 
 TABLE, CONVERSION, VOLUME = "stoichiometric-table", "conversion", "volume"
+EQUILIBRIUM = "equilibrium"
 
 OUTLET = {
     "phase": "gas",
@@ -573,6 +574,83 @@ case(
     "/target/conversion",
 )
 
+# -- equilibrium
+STILL: dict[str, Any] = {
+    "reactions": [{**SHIFT["reactions"][0], "equilibrium_constant": {"from": "thermochemistry"}}],
+    "key": "CO",
+    "feed": SHIFT["feed"],
+}
+BURNT: dict[str, Any] = {
+    "reactions": [
+        {
+            "equation": "CH4 + 2 O2 <=> CO2 + 2 H2O",
+            "equilibrium_constant": {"from": "thermochemistry"},
+        }
+    ],
+    "key": "CH4",
+    "hold": "enthalpy-pressure",
+    "feed": {
+        "phase": "gas",
+        "temperature": "2500 K",
+        "pressure": "1 bar",
+        "flows": {"CH4": "1 mol/s", "O2": "2 mol/s"},
+    },
+}
+LIME: dict[str, Any] = {
+    "species": {"CaCO3": {"phase": "solid"}, "CaO": {"phase": "solid"}},
+    "reactions": [{"equation": "CaCO3 <=> CaO + CO2", "equilibrium_constant": "0.05 bar"}],
+    "key": "CaCO3",
+    "feed": {
+        "phase": "gas",
+        "temperature": "1000 K",
+        "pressure": "1 bar",
+        "flows": {"CaCO3": "1 mol/s", "CaO": "3 mol/s", "CO2": "1 mol/s"},
+    },
+}
+
+
+def equilibrium(**places: Any):
+    return EQUILIBRIUM, changed(STILL, **places)
+
+
+case("hold-needs-batch", equilibrium(hold="energy-volume"), "/hold")
+case(
+    "sweep-does-not-fit",
+    equilibrium(
+        hold="enthalpy-pressure", sweep={"over": "temperature", "from": "500 K", "to": "600 K"}
+    ),
+    "/sweep/over",
+)
+case(
+    "constant-at-one-temperature",
+    equilibrium(hold="enthalpy-pressure", reactions__0__equilibrium_constant=10),
+    "/reactions/0/equilibrium_constant",
+)
+case(
+    "inconsistent-constants",
+    equilibrium(
+        reactions=[
+            {"equation": "CO + H2O <=> CO2 + H2", "equilibrium_constant": 10},
+            {"equation": "2 CO + 2 H2O <=> 2 CO2 + 2 H2", "equilibrium_constant": 10},
+        ]
+    ),
+    "/reactions",
+)
+case("mixture-vanishes", (EQUILIBRIUM, LIME), "/feed")
+case(
+    "equilibrium-not-found",
+    equilibrium(
+        hold="temperature-volume",
+        at={"volume": "1 l"},
+        gas_model="peng-robinson",
+        feed__flows=...,
+        feed__amounts={"CO": "1 kmol", "H2O": "3 kmol"},
+    ),
+    "/feed",
+)
+case("no-such-temperature", (EQUILIBRIUM, BURNT), "/feed")
+
+
 ELSEWHERE = {
     "not-json": "tests/service/test_bodies_and_forms.py",
     "too-deep": "tests/service/test_bodies_and_forms.py",
@@ -600,10 +678,6 @@ ELSEWHERE = {
     "root-not-bracketed": "tests/core/numerics/test_roots.py",
     "root-not-converged": "tests/core/numerics/test_roots.py",
     "integral-not-converged": "tests/core/numerics/test_quadrature.py",
-    "inconsistent-constants": "tests/core/equilibrium/test_equilibrium.py",
-    "mixture-vanishes": "tests/core/equilibrium/test_pure_phases.py",
-    "equilibrium-not-found": "tests/core/equilibrium/test_equilibrium.py",
-    "no-such-temperature": "tests/core/equilibrium/test_approach.py",
 }
 """Codes that no JSON request to a calculation brings about, and the test that does."""
 

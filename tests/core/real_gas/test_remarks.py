@@ -1,6 +1,6 @@
 import numpy as np
 
-from core.real_gas.remarks import remark_on_gas
+from core.real_gas.remarks import remark_on_constants, remark_on_gas
 
 NONE = np.zeros(3, dtype=bool)
 
@@ -37,4 +37,13 @@ def test_a_gas_that_may_condense():
 def test_the_error_of_the_volume_is_told():
     note = next(remark_on_gas(np.array([0.8]), NONE[:1], taken_as_ideal=True, subject=()))
     assert "Z = 0.800" in str(note)
-    assert "0.25" in str(note)
+    assert "25 %" in str(note)
+
+
+def test_a_constant_that_fugacities_change_is_told():
+    shift = np.array([[0.04, -0.01], [np.nan, np.nan], [0.01, -0.2]])
+    (note,) = remark_on_constants(shift, ["a", "b"], ("gas_model",))
+    assert note.code == "fugacities-not-ideal"
+    assert "of b, in partial pressures, 1.22 times" in str(note)
+    assert not list(remark_on_constants(shift[:2], ["a", "b"], ()))
+    assert not list(remark_on_constants(np.zeros((0, 2)), ["a", "b"], ()))
