@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Literal
@@ -30,7 +30,7 @@ from core.real_gas.remarks import remark_on_gas
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
-from core.thermochemistry.heat_balance import temperatures_known
+from core.thermochemistry.heat_balance import HeatsOfReaction, temperatures_known
 from core.thermochemistry.reaction_properties import beyond_range
 
 Over = Literal["temperature", "pressure"]
@@ -64,6 +64,8 @@ class FeedAtEquilibrium:
         By which an ideal gas is judged, where its constants are known.
     properties : tuple of StandardProperties, length S, or None
         None where a substance's are not known: then no heat is told.
+    heats : HeatsOfReaction or None
+        Of the reactions, with ``properties``.
     over : "temperature", "pressure" or None
         What is swept.
     values : ndarray, shape (p,)
@@ -81,6 +83,7 @@ class FeedAtEquilibrium:
     equation: CubicEquation | None = None
     witness: CubicEquation | None = None
     properties: tuple[StandardProperties, ...] | None = None
+    heats: HeatsOfReaction | None = None
     over: Over | None = None
     values: FloatArray | None = None
 
@@ -128,17 +131,13 @@ class FeedReached:
 
 @dataclass(frozen=True, eq=False)
 class _Enthalpies:
-    """Enthalpies of formation and sensible heats of substances."""
+    """Enthalpies of substances that the heats of the reactions follow from."""
 
-    properties: Sequence[StandardProperties]
+    heats: HeatsOfReaction
 
     def enthalpies(self, temperature: FloatArray, rows: IntArray) -> FloatArray:  # noqa: ARG002
         """Return h of each substance, J/mol, shape (m, S)."""
-        columns = []
-        for p in self.properties:
-            assert p.heat_capacity is not None
-            columns.append(p.enthalpy + p.heat_capacity.enthalpy(temperature))
-        return np.stack(columns, axis=-1)
+        return self.heats.substance_enthalpies(temperature)
 
 
 def constant_subject(reactions: ReactionSet, reaction: int) -> Subject:
@@ -181,12 +180,15 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     beyond = _beyond_range(problem, temperature)
     if beyond and not problem.hold.startswith("temperature"):
         raise Refused(beyond)
-    if problem.properties is not None and feed.temperature is not None and not beyond:
+    known = problem.properties is not None and problem.heats is not None
+    if known and feed.temperature is not None and not beyond:
+        assert problem.properties is not None
+        assert problem.heats is not None
         start = _energy(problem, feed.flows, feed.temperature, feed.pressure, z)
         asked = replace(
             asked,
             energy=None if start is None else np.full(count, start),
-            enthalpies=_Enthalpies(problem.properties),
+            enthalpies=_Enthalpies(problem.heats),
             temperatures=temperatures_known(problem.properties),
         )
     states = solve_equilibrium(asked)
@@ -400,9 +402,9 @@ def _energy(
 ) -> float | None:
     """Enthalpy of the feed, or its internal energy where volume is held, W (batch: J)."""
     feed = problem.feed
-    assert problem.properties is not None
+    assert problem.heats is not None
     t = np.array([temperature])
-    each = _Enthalpies(problem.properties).enthalpies(t, np.zeros(1, dtype=np.intp))[0]
+    each = _Enthalpies(problem.heats).enthalpies(t, np.zeros(1, dtype=np.intp))[0]
     total = float(flows @ each)
     gas = float(feed.phase_total) if feed.phase == "gas" else 0.0
     if problem.equation is not None and feed.phase == "gas":

@@ -70,7 +70,11 @@ class ReactionProperties:
     @property
     def enthalpy_at_reference(self) -> float:
         """Enthalpy of reaction at 298.15 K, J/mol."""
-        return float(sum(nu * p.enthalpy for nu, p in self._pairs()))
+        total = 0.0
+        for nu, p in self._pairs():
+            assert p.enthalpy is not None
+            total += nu * p.enthalpy
+        return total
 
     @property
     def entropy_at_reference(self) -> float:
