@@ -39,6 +39,7 @@ from core.streams.metered import Measurement
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import adiabatic_temperature
 from core.thermochemistry.known_heats import KnownHeats, not_known
+from core.thermochemistry.reaction_properties import extrapolations
 
 WORTH_A_CAUTION = 50.0
 """K of adiabatic rise at complete conversion. Below about 50 K, and without gas let off, a runaway
@@ -46,6 +47,8 @@ is commonly rated of low severity (F. Stoessel, Thermal Safety of Chemical Proce
 2008, ch. 3: from memory)."""
 _DISAGREE = 0.01
 """Of conversion, between the equilibrium of a rate law and that of the constant beside it."""
+_SPREAD = 0.05
+"""Of the enthalpy of reaction, by which collections differ, that is worth a warning."""
 _FEED: Subject = ("feed",)
 
 
@@ -160,7 +163,11 @@ class _Finder:
         if each is None:
             self.notes.append(not_known((*known.faults, *known.stream_faults), "heat"))
             return
+        # A heat stated at this temperature needs no properties, and there may be none.
         self.properties = tuple(p for p in known.properties if p is not None)
+        reacting = () if known.of_reacting is None else known.of_reacting[0]
+        self.notes += extrapolations(reacting, np.array(t), ("feed", "temperature"))
+        self._spread(known, float(each[0]))
         if self.feed.phase == "liquid":
             self.assumed.append(_MIXING_LEFT_OUT)
         per_extent = enthalpy = float(each[0])
@@ -170,6 +177,30 @@ class _Finder:
         extent = float(self.sizing.conversion * self.feed.flows[key] / -self.nu[key])
         self.told |= {"enthalpy": enthalpy, "duty": per_extent * extent + 0.0}
         self._rises(t, known, extent)
+
+    def _spread(self, known: KnownHeats, enthalpy: float) -> None:
+        """Say where well-known collections differ on the heat, as independent errors."""
+        if 0 in known.stated or known.of_reacting is None:
+            return
+        properties, heats = known.of_reacting
+        each = np.array([p.spreads.get("enthalpy", 0.0) for p in properties])
+        spread = float(np.sqrt(((heats.nu[0] * each) ** 2).sum()))
+        if spread > _SPREAD * abs(enthalpy):
+            self.notes.append(
+                Note(
+                    "sources-disagree",
+                    "well-known collections differ on the enthalpies of formation, so that the"
+                    " enthalpy of reaction, {enthalpy}, may be off by {spread}; 'provenance' has"
+                    " each value's source and spread: state the reaction's 'enthalpy' where it is"
+                    " known better",
+                    "warning",
+                    _FEED,
+                    {
+                        "enthalpy": Amount(enthalpy, "molar_energy"),
+                        "spread": Amount(spread, "molar_energy"),
+                    },
+                )
+            )
 
     def _rises(self, t: float, known: KnownHeats, extent: float) -> None:
         lacking = self._lacking(known)
@@ -185,6 +216,14 @@ class _Finder:
         if first is not None:
             which = "adiabatic rise" if fault else "adiabatic rise of complete conversion"
             self.notes.append(not_known([first], which))
+        ends = [t, *(t + rise for rise in (reached, complete) if rise is not None)]
+        told = {note.facts.get("substance") for note in self.notes}
+        assert known.of_all is not None
+        self.notes += [
+            note
+            for note in extrapolations(known.of_all[0], np.array(ends), _FEED)
+            if note.facts["substance"] not in told
+        ]
         least = None
         if beyond is not None and beyond.facts.get("side") == "above":
             limit = beyond.facts["limit"]

@@ -264,8 +264,19 @@ def adiabatic_temperature(
         within = [p for p, there in zip(properties, present[case], strict=True) if there]
         limit = float(high[case] if above[case] else low[case])
         raise _out_of_reach(bool(above[case]), limit, within, subject)
-    found: FloatArray = find_root(excess, bottom, top, subject=subject).reshape(lead)
-    return found
+    # On the side of the inlet where heat is taken up, or given off.
+    warmer = excess(t0, rows) < 0
+    lower, upper = np.where(warmer, t0, bottom), np.where(warmer, top, t0)
+    found: FloatArray = find_root(excess, lower, upper, subject=subject)
+    faults = [
+        fault
+        for i, p in enumerate(properties)
+        if present[:, i].any()
+        for fault in beyond_range((p,), found[present[:, i]], subject)
+    ]
+    if faults:
+        raise Refused(faults)
+    return found.reshape(lead)
 
 
 def complete_extents(reactions: ReactionSet, reaction: int, flows: FloatArray) -> FloatArray:
