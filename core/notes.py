@@ -92,8 +92,8 @@ NOTES: dict[str, Entry] = {
     ),
     "sources-disagree": Entry(
         "Sources disagree",
-        "Well-known collections differ on the properties behind an equilibrium constant or a heat of"
-        " reaction. State those that you trust under 'species', or the constant, or the heat.",
+        "Well-known collections differ on the properties behind an equilibrium constant or a heat"
+        " of reaction. State those that you trust under 'species', or the constant, or the heat.",
     ),
     "property-data-extrapolated": Entry(
         "Property data extrapolated",
