@@ -92,8 +92,8 @@ NOTES: dict[str, Entry] = {
     ),
     "sources-disagree": Entry(
         "Sources disagree",
-        "Well-known collections differ on the properties behind an equilibrium constant. State"
-        " those that you trust under 'species', or the constant.",
+        "Well-known collections differ on the properties behind an equilibrium constant or a heat"
+        " of reaction. State those that you trust under 'species', or the constant, or the heat.",
     ),
     "property-data-extrapolated": Entry(
         "Property data extrapolated",
@@ -192,6 +192,27 @@ NOTES: dict[str, Entry] = {
     "heat-not-known": Entry(
         "Heat not known",
         "Enthalpies or heat capacities of some substances are not known, so that no heat is given.",
+    ),
+    "heat-of-mixing-left-out": Entry(
+        "Heat of mixing left out",
+        "Heats in a liquid were computed from pure substances. State the reaction's 'enthalpy'"
+        " where heats of solution, mixing or dilution count.",
+    ),
+    "adiabatic-rise-high": Entry(
+        "High adiabatic rise",
+        "Complete conversion without exchange of heat would raise the temperature by more than 50"
+        " K (common practice for screening). Runaway, decomposition and relief are not assessed;"
+        " follow local codes and licensed practice.",
+    ),
+    "equilibrium-not-known": Entry(
+        "Equilibrium not known",
+        "An equilibrium that the reactor is compared with could not be computed; the size does not"
+        " hang on it.",
+    ),
+    "rates-contradict-constant": Entry(
+        "Rates contradict the equilibrium constant",
+        "Forward and reverse rate balance elsewhere than the stated equilibrium constant says."
+        " Check both, their units and what the constants belong to.",
     ),
     "approach-not-known": Entry(
         "Approach not known",

@@ -498,6 +498,11 @@ _REACTORS: dict[str, Entry] = {
         "The law is said to give the rate of a substance that the reaction neither consumes nor"
         " forms. Name one that it does.",
     ),
+    "heat-of-absent-substance": Entry(
+        "Heat per mole of a substance that does not react",
+        "The heat of a reaction is stated per mole of a substance that the reaction neither"
+        " consumes nor forms. Name one that it does.",
+    ),
     "rate-constant-unit": Entry(
         "Unit of the rate constant",
         "The unit does not fit the orders and the driving quantity of the law. The detail says"

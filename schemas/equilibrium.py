@@ -15,8 +15,7 @@ from core.equilibrium.feed_at_equilibrium import (
     Over,
 )
 from core.equilibrium.outlet import MeasuredOutlet
-from core.equilibrium.problem import Hold
-from core.errors import Note, Refused, Subject
+from core.errors import Refused, Subject
 from core.outlet_analysis.feed import KnownFeed, feed_of_account
 from core.outlet_analysis.reconciliation import estimate
 from core.rates.equilibrium_constant import (
@@ -27,7 +26,8 @@ from core.real_gas.cubic import CubicEquation
 from core.real_gas.equation import KnownGas, gas_of
 from core.streams.stream import Stream, StreamPhase
 from core.substances.property_data import StandardProperties
-from core.thermochemistry.reaction_properties import properties_of
+from core.thermochemistry.heat_balance import HeatsOfReaction
+from core.thermochemistry.known_heats import known_heats, not_known
 from schemas.conversion import read_question
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.equilibrium_constant import read_equilibrium_constant
@@ -37,6 +37,7 @@ from schemas.gas_model import gas_model, interactions
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
+from schemas.thermochemistry import read_heats
 
 MAX_POINTS = 500
 """Of a sweep."""
@@ -171,7 +172,7 @@ def _read_question(
         )
         return None
     witness = _witness(reactions, feed.stream) if gas is None else None
-    properties = _read_properties(request["hold"], reader, reactions, phase, places)
+    thermal = _read_properties(request, reader, reactions, phase, places)
     if len(reader.faults):
         return None
     problem = FeedAtEquilibrium(
@@ -182,7 +183,8 @@ def _read_question(
         hold=request["hold"],
         equation=None if gas is None else gas.equation,
         witness=witness,
-        properties=properties,
+        properties=None if thermal is None else thermal[0],
+        heats=None if thermal is None else thermal[1],
         over=over,
         values=values,
         **at,
@@ -372,27 +374,22 @@ def _witness(reactions: ReactionSet, feed: Stream) -> CubicEquation | None:
 
 
 def _read_properties(
-    hold: Hold,
+    request: Json,
     reader: RequestReader,
     reactions: ReactionSet,
     phase: StreamPhase,
     places: Callable[[str], Subject],
-) -> tuple[StandardProperties, ...] | None:
-    """Return every substance's properties; None where no heat can be told and none is needed."""
+) -> tuple[tuple[StandardProperties, ...], HeatsOfReaction] | None:
+    """Return properties and heats; None where no heat can be told and none is needed."""
+    stated = read_heats(request["reactions"], reader, reactions)
     try:
-        return properties_of(reactions.substances, phase, places, ("enthalpy", "heat_capacity"))
+        known = known_heats(reactions, phase, places, stated)
     except Refused as refused:
-        if not hold.startswith("temperature"):
-            reader.collect(refused)
-            return None
-        lacking = [str(fault.facts.get("substance", "")) for fault in refused.faults]
-        reader.notes.append(
-            Note(
-                "heat-not-known",
-                "no heat is given: enthalpies and heat capacities are not known of"
-                f" {', '.join(name for name in lacking if name) or 'every substance'}; state them"
-                " under 'species'",
-                subject=("feed",),
-            )
-        )
+        reader.collect(refused)
         return None
+    faults = (*known.faults, *known.stream_faults)
+    if faults and not request["hold"].startswith("temperature"):
+        reader.collect(Refused(faults))
+    elif faults:
+        reader.notes.append(not_known(faults, "heat"))
+    return known.of_all

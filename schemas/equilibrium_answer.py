@@ -28,6 +28,7 @@ from core.rates.equilibrium_constant import (
 from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.approach import LARGEST_EXPONENT, ApproachSchema, write_approach
 from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
@@ -56,24 +57,6 @@ class EquilibriumConstantResultSchema(OpenSchema):
     )
     standard_pressure = number("Of gases, where it counts.")
     enthalpy_of_reaction = number("At that temperature, per mole of reaction as written.")
-
-
-class ApproachSchema(OpenSchema):
-    """How far the measured outlet is from the equilibrium of one reaction."""
-
-    approach = number(
-        "Equilibrium temperature of the outlet's composition less the outlet's, of an exothermic"
-        " reaction; the opposite of an endothermic one: positive means short of equilibrium.",
-        required=True,
-    )
-    equilibrium_temperature = number(
-        "At which the outlet's composition would be at equilibrium.", required=True
-    )
-    quotient_over_constant = number(
-        "Q/K at the outlet's temperature; below one: short of equilibrium, as the reaction is"
-        " written. Null where it is beyond what a number of a computer holds.",
-        required=True,
-    )
 
 
 class EquilibriumHeatSchema(OpenSchema):
@@ -135,9 +118,6 @@ EquilibriumAnswer = envelope("EquilibriumAnswer", EquilibriumResult)
 
 HEATS = {"duty": "heat supplied (below zero: removed)", "adiabatic_rise": "adiabatic rise"}
 """How a page calls them."""
-
-LARGEST_EXPONENT = 690.0
-"""ln of what a number of a computer holds."""
 
 FORMS: dict[type, str] = {
     Constant: "stated",
@@ -364,25 +344,8 @@ class _Writer:
 
     def _approach(self) -> Json:
         assert self.approach is not None
-        edge = self.edge
-        told: Json = {}
-        for id_, found in zip(self.ids, self.approach[0], strict=True):
-            if found is None:
-                told[id_] = None
-                continue
-            ratio = found.ln_quotient_over_constant
-            told[id_] = {
-                "approach": edge.uncertain(found.approach, found.u, "temperature_difference"),
-                "equilibrium_temperature": edge.uncertain(
-                    found.equilibrium_temperature, found.equilibrium_temperature_u, "temperature"
-                ),
-                "quotient_over_constant": edge.uncertain(
-                    math.exp(ratio), math.exp(ratio) * found.ln_quotient_u, "dimensionless"
-                )
-                if abs(ratio) < LARGEST_EXPONENT
-                else None,
-            }
-        return told
+        each = zip(self.ids, self.approach[0], strict=True)
+        return {id_: write_approach(found, self.edge.uncertain) for id_, found in each}
 
     def _sources(self) -> Json:
         used: dict[str, StandardProperties] = {}

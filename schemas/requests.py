@@ -20,7 +20,7 @@ from schemas.fields import Choice, List, Map, OneOf, Quantity, Text, describe
 from schemas.rates import RateSchema
 from schemas.shape import ClosedSchema, child, load
 from schemas.streams import substances_of
-from schemas.thermochemistry import property_fields, read_stated
+from schemas.thermochemistry import HeatOfReactionSchema, property_fields, read_stated
 from schemas.units import DEFAULT_UNITS
 
 T = TypeVar("T")
@@ -74,6 +74,10 @@ class ReactionSchema(ClosedSchema):
     rate = fields.Nested(RateSchema, metadata=describe("Used by reactor questions."))
     equilibrium_constant = equilibrium_constant(
         metadata=describe("Of the equation as written; its unit says which kind it is.")
+    )
+    enthalpy = fields.Nested(
+        HeatOfReactionSchema,
+        metadata=describe("Its heat at one temperature. Left out: from enthalpies of formation."),
     )
 
 

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
+from typing import Any
 
 from marshmallow import fields
 
+from core.reactions.reaction_set import ReactionSet
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from core.substances.property_data import (
     SOURCES,
@@ -14,6 +16,8 @@ from core.substances.property_data import (
     StandardProperties,
 )
 from core.substances.substance import StatedProperties
+from core.thermochemistry.heat_balance import StatedHeat
+from core.thermochemistry.reaction_properties import LEAST_TEMPERATURE, MOST_TEMPERATURE
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.fields import List, Number, OneOf, Quantity, Text, describe
 from schemas.quantities import RawQuantity
@@ -170,6 +174,95 @@ def _read_polynomial(
     form = Polynomial(first, tuple(row))
     low, high = sorted(end.value for end in ends if end is not None) if ends else WIDE
     return HeatCapacity((Piece(low, high, form),), bounded=bool(ends))
+
+
+class HeatOfReactionSchema(ClosedSchema):
+    """The heat of a reaction at one temperature; wins over enthalpies of formation."""
+
+    heat = Quantity(
+        required=True,
+        metadata=describe(
+            "Per mole of 'of' consumed or formed; below zero where heat is given off.",
+            examples=["-98.9 kJ/mol"],
+        ),
+    )
+    of = Text(required=True, metadata=describe("A substance of the reaction.", examples=["SO2"]))
+    at = Quantity(
+        required=True, metadata=describe("The temperature at which it holds.", examples=["25 degC"])
+    )
+
+
+MOST_HEAT = 1e8
+"""J/mol; burning the largest molecules that are weighed out by the mole gives less."""
+
+
+def read_heats(
+    said: Sequence[Any], reader: RequestReader, reactions: ReactionSet
+) -> dict[int, StatedHeat]:
+    """Return the heats that reactions' documents state, by reaction.
+
+    Parameters
+    ----------
+    said : sequence of str or dict
+        The reactions of the request.
+    reader : RequestReader
+        Keeps the faults.
+    reactions : ReactionSet
+    """
+    found = {}
+    for j, document in enumerate(said):
+        if isinstance(document, str) or "enthalpy" not in document:
+            continue
+        one = _read_heat(
+            document["enthalpy"], j, document.get("id", f"r{j + 1}"), reader, reactions
+        )
+        if one is not None:
+            found[j] = one
+    return found
+
+
+def _read_heat(
+    said: Json, j: int, id_: str, reader: RequestReader, reactions: ReactionSet
+) -> StatedHeat | None:
+    place, about = child("/reactions", j, "enthalpy"), ("reactions", id_, "enthalpy")
+    reader.at(about, place)
+    kept = len(reader.faults)
+    heat = reader.quantity(said["heat"], child(place, "heat"), (*about, "heat"), "molar_energy")
+    if heat is not None and abs(heat.value) > MOST_HEAT:
+        reader.fault(
+            "impossible-value",
+            child(place, "heat"),
+            f"found {abs(heat.value) / 1e3:.6g} kJ/mol; up to {MOST_HEAT / 1e3:.6g} kJ/mol is"
+            " believed: check the unit",
+        )
+    at = reader.quantity(said["at"], child(place, "at"), (*about, "at"), "temperature", above=0)
+    if at is not None and not LEAST_TEMPERATURE <= at.value <= MOST_TEMPERATURE:
+        reader.fault(
+            "impossible-value",
+            child(place, "at"),
+            f"found {at.value:.6g} K; {LEAST_TEMPERATURE:g} to {MOST_TEMPERATURE:g} K is believed:"
+            " check the unit",
+        )
+    of = None
+    if reactions.reactions:
+        of = reactions.find(said["of"])
+        reacting = [n for n, nu in zip(reactions.names, reactions.nu[j], strict=True) if nu]
+        if of is None:
+            reader.fault(
+                "unknown-substance",
+                child(place, "of"),
+                f"found {said['of']!r}; the substances of this reaction are {', '.join(reacting)}",
+            )
+        elif not reactions.nu[j, of]:
+            reader.fault(
+                "heat-of-absent-substance",
+                child(place, "of"),
+                f"found {said['of']!r}, which the reaction neither consumes nor forms; name one of"
+                f" {', '.join(reacting)}",
+            )
+    if len(reader.faults) > kept or heat is None or at is None or of is None:
+        return None
+    return StatedHeat(heat.value, of, at.value)
 
 
 WIDE = (1.0, 1e4)

@@ -9,19 +9,25 @@ import numpy as np
 from marshmallow import fields
 
 from core.constants import NORMAL_MOLAR_VOLUME
+from core.equilibrium.feed_at_equilibrium import constant_subject
 from core.errors import Note, Refused, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNKNOWN
 from core.mole_account.targets import DIMENSIONS as TARGET_DIMENSIONS
 from core.mole_account.targets import conversion_for
-from core.rates.power_law import ByAffinity
+from core.rates.equilibrium_constant import EquilibriumConstant
+from core.rates.power_law import ByAffinity, PowerLaw
 from core.reactions.reaction_set import ReactionSet
+from core.reactors.energetics import Energetics
 from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.sizing import Sizing, SizingProblem
-from core.streams.stream import Stream
+from core.streams.stream import Stream, StreamPhase
 from core.substances.property_data import PACKAGED, StandardProperties
+from core.thermochemistry.known_heats import KnownHeats, known_heats
 from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.approach import ApproachSchema, write_approach
 from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.equilibrium_constant import read_equilibrium_constant
 from schemas.feed import (
     StreamResultSchema,
     is_batch,
@@ -31,10 +37,17 @@ from schemas.feed import (
 from schemas.fields import Choice, Map, Number, OneOf, Quantity, Tagged, Text, describe
 from schemas.rates import read_rate
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
-from schemas.results import NumberSchema, OpenSchema, TableSchema, envelope, number
+from schemas.results import (
+    NumberSchema,
+    OpenSchema,
+    TableSchema,
+    envelope,
+    number,
+    numbers_by_name,
+)
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
-from schemas.thermochemistry import write_sources
+from schemas.thermochemistry import read_heats, write_sources
 
 
 class PlugFlowSchema(ClosedSchema):
@@ -138,8 +151,26 @@ class VolumeRequest(AccountSchema):
 _REQUEST = VolumeRequest()
 
 
-def read(document: Any) -> tuple[SizingProblem, EdgeMap]:
-    """Return the problem that a request states, and its edge map.
+@dataclass(frozen=True, eq=False)
+class VolumeQuestion:
+    """What a request asks for.
+
+    Attributes
+    ----------
+    problem : SizingProblem
+    heats : KnownHeats or None
+        None where the feed's temperature is not stated.
+    constant : EquilibriumConstant or None
+        Of the reaction, where one is stated.
+    """
+
+    problem: SizingProblem
+    heats: KnownHeats | None
+    constant: EquilibriumConstant | None
+
+
+def read(document: Any) -> tuple[VolumeQuestion, EdgeMap]:
+    """Return what a request asks for, and its edge map.
 
     Raises
     ------
@@ -150,7 +181,7 @@ def read(document: Any) -> tuple[SizingProblem, EdgeMap]:
 
 def _read_problem(
     request: Json, reader: RequestReader, reactions: ReactionSet
-) -> SizingProblem | None:
+) -> VolumeQuestion | None:
     key = read_key(request, reader, reactions)
     known = read_feed(request["feed"], "/feed", reader, reactions, key)
     said = request["reactions"][0]
@@ -161,7 +192,8 @@ def _read_problem(
             f"found {len(reactions.reactions)}; this release sizes reactors for one reaction",
         )
         return None
-    rate = None
+    rate = constant = None
+    stated = read_heats(request["reactions"], reader, reactions)
     if isinstance(said, str) or "rate" not in said:
         reader.fault(
             "field-needed",
@@ -172,6 +204,7 @@ def _read_problem(
     else:
         phase = request["feed"].get("phase", "gas")
         rate = read_rate(said, "/reactions/0", reader, reactions, phase)
+        constant = _constant_of(said, rate, reader, reactions, phase)
     if known is not None and known.per_mole_of_key:
         reader.fault(
             "field-needed",
@@ -187,7 +220,28 @@ def _read_problem(
     target = _read_target(request, reader, reactions, key, feed)
     if feed is None or rate is None or target is None:
         return None
-    return SizingProblem(reactions, key, feed, rate, np.asarray(target), reactor)
+    problem = SizingProblem(reactions, key, feed, rate, np.asarray(target), reactor)
+    heats = None
+    if feed.temperature is not None:
+        heats = known_heats(reactions, feed.phase, lambda name: ("species", name), stated)
+    return VolumeQuestion(problem, heats, constant)
+
+
+def _constant_of(
+    said: Json,
+    rate: PowerLaw | None,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    phase: StreamPhase,
+) -> EquilibriumConstant | None:
+    """Return the reaction's constant: that of its rate, or the one beside a reverse rate."""
+    if rate is None or rate.reverse is None:
+        return None
+    if isinstance(rate.reverse, ByAffinity):
+        return rate.reverse.equilibrium
+    if "equilibrium_constant" not in said:
+        return None
+    return read_equilibrium_constant(said, "/reactions/0", reader, reactions, 0, phase)
 
 
 def _read_target(
@@ -264,10 +318,42 @@ class EquilibriumSchema(OpenSchema):
     conversion = number("At the outlet's temperature.", required=True)
 
 
+class AdiabaticEquilibriumSchema(OpenSchema):
+    """Where the feed comes to equilibrium if no heat passes."""
+
+    conversion = number("Of the key.", required=True)
+    temperature = number(required=True)
+
+
 class EquilibriumLimitSchema(OpenSchema):
     """Equilibrium, for a reversible rate."""
 
-    at_outlet_temperature = fields.Nested(EquilibriumSchema, required=True)
+    at_outlet_temperature = fields.Nested(EquilibriumSchema, required=True, allow_none=True)
+    adiabatic = fields.Nested(
+        AdiabaticEquilibriumSchema,
+        allow_none=True,
+        metadata=describe(
+            "Of this feed, where the constant is known over temperature; null where heats are not."
+        ),
+    )
+    approach = numbers_by_name(
+        ApproachSchema, "By reaction, of the outlet; where the constant is known over temperature."
+    )
+
+
+class ReactorHeatSchema(OpenSchema):
+    """The heat of the reaction, and what it would do if it were not removed."""
+
+    duty = number("To be supplied to keep the temperature (below zero: removed).", required=True)
+    enthalpy_of_reaction = numbers_by_name(
+        text="By reaction as written, at the feed's temperature.", required=True
+    )
+    adiabatic_rise = number(
+        "What the conversion reached would bring without exchange of heat.", required=True
+    )
+    adiabatic_rise_complete = number(
+        "What complete conversion of the limiting reactant would bring.", required=True
+    )
 
 
 class VolumeResult(OpenSchema):
@@ -300,6 +386,12 @@ class VolumeResult(OpenSchema):
     inlet = fields.Nested(StreamResultSchema, required=True)
     outlet = fields.Nested(StreamResultSchema, required=True)
     equilibrium = fields.Nested(EquilibriumLimitSchema)
+    heat = fields.Nested(
+        ReactorHeatSchema,
+        required=True,
+        allow_none=True,
+        metadata=describe("Null where the heat of the reaction is not known; a note says why."),
+    )
     tank_conversions = fields.List(
         fields.Nested(NumberSchema), metadata=describe("Of tanks in series, in order.")
     )
@@ -322,8 +414,11 @@ SCREENING = Note(
 )
 
 
-def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
+def write(
+    question: VolumeQuestion, sizing: Sizing, energetics: Energetics, edge: EdgeMap
+) -> Answer:
     """Return the answer that holds a size."""
+    problem = question.problem
     names, feed = problem.reactions.names, problem.feed
     batch = problem.reactor.size_dimension == "time"
     limit = sizing.limit
@@ -348,23 +443,29 @@ def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
     result["outlet_rate"] = edge.number(float(sizing.outlet_rate), "reaction_rate")
     result["inlet"] = write_known_stream(edge, names, feed)
     result["outlet"] = write_known_stream(edge, names, sizing.outlet)
-    if problem.rate.reverse is not None and at_equilibrium:
+    if question.constant is not None:
+        result["equilibrium"] = _equilibrium(question, energetics, edge)
+    elif problem.rate.reverse is not None and at_equilibrium:
         number_ = edge.number(float(limit.conversion), "dimensionless")
         result["equilibrium"] = {"at_outlet_temperature": {"conversion": number_}}
+    result["heat"] = _heat(question, energetics, edge)
     if sizing.tanks is not None and sizing.tanks.conversion.shape[-1] > 1:
         result["tank_conversions"] = [
             edge.number(x, "dimensionless") for x in sizing.tanks.conversion.tolist()
         ]
     if sizing.profile is not None:
         result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
-    of_k = _EquilibriumNotes.of(problem)
+    of_k = _EquilibriumNotes.of(question)
+    used = {p.substance: p for p in (*energetics.properties, *of_k.properties)}
+    notes = (*edge.read_notes, *sizing.notes, *of_k.notes, *energetics.notes, *_notes(feed))
+    assumed = (*edge.read_assumed, *of_k.assumed, *energetics.assumed, *_assumed(problem))
     return Answer(
         result=result,
-        notes=edge.notes((*edge.read_notes, *sizing.notes, *of_k.notes, *_notes(feed))),
-        assumed=edge.notes((*edge.read_assumed, *of_k.assumed, *_assumed(problem))),
+        notes=edge.notes(notes),
+        assumed=edge.notes(assumed),
         method=METHOD,
-        data=f"{ATOMIC_WEIGHTS}; {PACKAGED}" if of_k.properties else ATOMIC_WEIGHTS,
-        properties=write_sources(edge, of_k.properties) if of_k.properties else None,
+        data=f"{ATOMIC_WEIGHTS}; {PACKAGED}" if used else ATOMIC_WEIGHTS,
+        properties=write_sources(edge, used.values()) if used else None,
     )
 
 
@@ -377,17 +478,55 @@ class _EquilibriumNotes:
     properties: tuple[StandardProperties, ...] = ()
 
     @classmethod
-    def of(cls, problem: SizingProblem) -> _EquilibriumNotes:
-        reverse, reaction = problem.rate.reverse, problem.reactions.reactions[0]
-        if not isinstance(reverse, ByAffinity):
+    def of(cls, question: VolumeQuestion) -> _EquilibriumNotes:
+        constant, problem = question.constant, question.problem
+        if constant is None:
             return cls()
-        constant = reverse.equilibrium
         t = problem.feed.temperature
         at = None if t is None else float(t)
-        subject: Subject = ("reactions", reaction.id, "equilibrium_constant")
+        subject = constant_subject(problem.reactions, 0)
         form = constant.constant
         properties = form.properties if isinstance(form, ReactionProperties) else ()
         return cls(constant.notes(at, subject), constant.assumed(at, subject), properties)
+
+
+def _equilibrium(question: VolumeQuestion, found: Energetics, edge: EdgeMap) -> Json:
+    constant, problem = question.constant, question.problem
+    assert constant is not None
+    conversion = found.equilibrium_conversion
+    told: Json = {
+        "at_outlet_temperature": None
+        if conversion is None
+        else {"conversion": edge.number(conversion, "dimensionless")}
+    }
+    if constant.constant.needs_temperature:
+        adiabatic, t = found.adiabatic_conversion, found.adiabatic_temperature
+        told["adiabatic"] = None
+        if adiabatic is not None and t is not None:
+            told["adiabatic"] = {
+                "conversion": edge.number(adiabatic, "dimensionless"),
+                "temperature": edge.number(t, "temperature"),
+            }
+        approach = write_approach(found.approach, lambda x, _, name: edge.number(x, name))
+        told["approach"] = {problem.reactions.reactions[0].id: approach}
+    return told
+
+
+def _heat(question: VolumeQuestion, found: Energetics, edge: EdgeMap) -> Json | None:
+    if found.enthalpy is None:
+        return None
+    problem = question.problem
+
+    def maybe(value: float | None, dimension: str) -> Json | None:
+        return None if value is None else edge.number(value, dimension)
+
+    enthalpy = edge.number(found.enthalpy, "molar_energy")
+    return {
+        "duty": maybe(found.duty, "energy" if problem.feed.batch else "power"),
+        "enthalpy_of_reaction": {problem.reactions.reactions[0].id: enthalpy},
+        "adiabatic_rise": maybe(found.adiabatic_rise, "temperature_difference"),
+        "adiabatic_rise_complete": maybe(found.adiabatic_rise_complete, "temperature_difference"),
+    }
 
 
 def _space_velocities(feed: Stream, volume: float, edge: EdgeMap) -> Json:

@@ -6,6 +6,7 @@ from typing import Any
 
 from flask import Blueprint
 
+from core.reactors.energetics import energetics_of
 from core.reactors.sizing import size_reactor
 from schemas import volume as wire
 from schemas.answer import Answer
@@ -18,7 +19,8 @@ blueprint = Blueprint("volume", __name__)
 @calculation(blueprint, operation("volume"))
 def answer(document: Any) -> Answer:
     """Return the reactor size that the target needs."""
-    problem, edge = wire.read(document)
+    question, edge = wire.read(document)
     with edge.locating():
-        sizing = size_reactor(problem, wire.PROFILE_POINTS)
-    return wire.write(problem, sizing, edge)
+        sizing = size_reactor(question.problem, wire.PROFILE_POINTS)
+        energetics = energetics_of(question.problem, sizing, question.heats, question.constant)
+    return wire.write(question, sizing, energetics, edge)

@@ -557,6 +557,14 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
         v = result.get("volume")
         if v is not None and v["value"] == 0 and result["conversion"]["value"] != 0:
             broken.append(("zero-volume", str(result["conversion"])))
+        heat = result.get("heat") or {}
+        rises = [heat.get(name) for name in ("adiabatic_rise", "adiabatic_rise_complete")]
+        if (not heat or None in rises) and "heat-not-known" not in codes:
+            broken.append(("heat-without-note", str(heat)))
+        if None not in rises and heat:
+            within, whole = (abs(rise["value"]) for rise in rises)
+            if within > whole * (1 + 1e-6) + 1e-6 and rises[0]["value"] * rises[1]["value"] > 0:
+                broken.append(("rise-beyond-complete", str(heat)))
     return broken
 
 
@@ -1511,6 +1519,13 @@ class Maker:
             }
         if self.chance(0.1):
             rate["activity"] = rnd.choice([1e-9, 10, 0.5])
+        if self.chance(0.3):
+            self.state_properties(made, names)
+            reaction["enthalpy"] = {
+                "heat": rnd.choice(["-98 kJ/mol", "40 kcal/mol", "0 J/mol", "1e9 kJ/mol"]),
+                "of": rnd.choice(names),
+                "at": rnd.choice(["298.15 K", "25 degC", "600 K", "1 K", "4000 K"]),
+            }
         made["reactions"] = [reaction]
         feed: dict[str, Any] = {"phase": system.phase}
         kind = rnd.choice(["plug-flow", "stirred-tank", "tanks-in-series", "batch"])

@@ -67,6 +67,7 @@ def approach_temperature(
     faults: dict[int, Fault] = {}
     # ln K runs about straight in 1/T.
     grid = 1.0 / np.linspace(1.0 / between[0], 1.0 / between[1], _LOOKS)
+    grid[[0, -1]] = between  # not beyond them by a rounding
     values = ln_constant(grid)
     lower, upper = np.full(count, np.nan), np.full(count, np.nan)
     for i in range(count):

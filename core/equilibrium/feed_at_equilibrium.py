@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Literal
@@ -26,7 +26,7 @@ from core.real_gas.remarks import remark_on_constants, remark_on_gas
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
-from core.thermochemistry.heat_balance import temperatures_known
+from core.thermochemistry.heat_balance import HeatsOfReaction, temperatures_known
 from core.thermochemistry.reaction_properties import ReactionProperties, beyond_range
 
 Over = Literal["temperature", "pressure"]
@@ -60,6 +60,8 @@ class FeedAtEquilibrium:
         By which an ideal gas is judged, where its constants are known.
     properties : tuple of StandardProperties, length S, or None
         None where a substance's are not known: then no heat is told.
+    heats : HeatsOfReaction or None
+        Of the reactions, with ``properties``.
     over : "temperature", "pressure" or None
         What is swept.
     values : ndarray, shape (p,)
@@ -77,6 +79,7 @@ class FeedAtEquilibrium:
     equation: CubicEquation | None = None
     witness: CubicEquation | None = None
     properties: tuple[StandardProperties, ...] | None = None
+    heats: HeatsOfReaction | None = None
     over: Over | None = None
     values: FloatArray | None = None
 
@@ -124,17 +127,13 @@ class FeedReached:
 
 @dataclass(frozen=True, eq=False)
 class _Enthalpies:
-    """Enthalpies of formation and sensible heats of substances."""
+    """Enthalpies of substances that the heats of the reactions follow from."""
 
-    properties: Sequence[StandardProperties]
+    heats: HeatsOfReaction
 
     def enthalpies(self, temperature: FloatArray, rows: IntArray) -> FloatArray:  # noqa: ARG002
         """Return h of each substance, J/mol, shape (m, S)."""
-        columns = []
-        for p in self.properties:
-            assert p.heat_capacity is not None
-            columns.append(p.enthalpy + p.heat_capacity.enthalpy(temperature))
-        return np.stack(columns, axis=-1)
+        return self.heats.substance_enthalpies(temperature)
 
 
 def constant_subject(reactions: ReactionSet, reaction: int) -> Subject:
@@ -179,10 +178,11 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     )
     if adiabatic:
         assert problem.properties is not None
+        assert problem.heats is not None
         asked = replace(
             asked,
             energy=np.full(count, start),
-            enthalpies=_Enthalpies(problem.properties),
+            enthalpies=_Enthalpies(problem.heats),
             temperatures=temperatures_known(problem.properties),
         )
     states = solve_equilibrium(asked)
@@ -388,7 +388,7 @@ def _energy_of_feed(
 ) -> tuple[float | None, list[Fault]]:
     """Return what energy the feed has, W (batch: J); None, and why, where no heat can be told."""
     feed = problem.feed
-    if problem.properties is None:
+    if problem.properties is None or problem.heats is None:
         return None, []  # said when it was read
     lacking = [
         name
@@ -453,10 +453,10 @@ def _energies(
 
     Not a number where that of a real gas hangs on a pressure that is none.
     """
-    assert problem.properties is not None
+    assert problem.heats is not None
     inside = problem.feed.in_phase
     rows = np.arange(len(flows))
-    each = _Enthalpies(problem.properties).enthalpies(temperature, rows)
+    each = _Enthalpies(problem.heats).enthalpies(temperature, rows)
     total: FloatArray = (flows * each).sum(axis=1)
     if problem.feed.phase == "liquid":
         return total

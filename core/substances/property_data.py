@@ -26,7 +26,7 @@ import csv
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from functools import cache, cached_property
+from functools import cache, cached_property, lru_cache
 from importlib.resources import files
 from types import MappingProxyType
 
@@ -228,8 +228,8 @@ class StandardProperties:
     name, registry_number : str or None
         What it was taken for in the tables; None where nothing is from there.
     found_by : FoundBy or None
-    enthalpy : float
-        Of formation at 298.15 K, J/mol.
+    enthalpy : float or None
+        Of formation at 298.15 K, J/mol; None where none was asked for.
     entropy : float or None
         At 298.15 K and 1 bar, J/(mol K). None: ``entropy_of_formation`` alone is known, or
         none was asked for.
@@ -248,7 +248,7 @@ class StandardProperties:
     name: str | None
     registry_number: str | None
     found_by: FoundBy | None
-    enthalpy: float
+    enthalpy: float | None
     entropy: float | None
     entropy_of_formation: float | None
     heat_capacity: HeatCapacity | None
@@ -286,7 +286,24 @@ def standard_properties(
         ``ambiguous-substance``: the composition is that of several, which are named.
         ``identity-contradicts-formula``.
     """
-    phase = substance.phase or phase
+    found = _remembered(substance, substance.phase or phase, wanted)
+    return found or _looked_up(substance, substance.phase or phase, subject, wanted)
+
+
+@lru_cache(maxsize=1024)
+def _remembered(
+    substance: Substance, phase: Phase, wanted: tuple[str, ...]
+) -> StandardProperties | None:
+    """Return what was found before; None where there is a refusal, which has its own subject."""
+    try:
+        return _looked_up(substance, phase, (), wanted)
+    except Refused:
+        return None
+
+
+def _looked_up(
+    substance: Substance, phase: Phase, subject: Subject, wanted: tuple[str, ...]
+) -> StandardProperties:
     stated = substance.stated or StatedProperties()
     has = {
         "enthalpy": stated.enthalpy is not None,
@@ -336,11 +353,12 @@ def _merged(
             sources[what] = STATED
         elif what in wanted:
             from_table(what)
-    if enthalpy is None:
+    if enthalpy is None and ("enthalpy" in wanted or "entropy" in wanted):
         assert tabled is not None
         enthalpy = tabled.enthalpy
     if "entropy" in wanted:
         if stated.gibbs is not None:
+            assert enthalpy is not None
             formation = (enthalpy - stated.gibbs) / REFERENCE_TEMPERATURE
         else:
             if entropy is None:

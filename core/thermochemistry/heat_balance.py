@@ -8,18 +8,21 @@ shaft work::
 
 The left side rises with T wherever the outlet holds anything, since its slope
 is the heat capacity flow of the outlet. Pressure plays no part: gases are ideal,
-liquids and solids of pressure-independent enthalpy. N cases stand along the
+liquids and solids of pressure-independent enthalpy. In a closed vessel whose
+volume is held the internal energy stays, each H_i of a gas less Z R T. N cases stand along the
 leading axes of flows, extents and temperatures.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
 from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
 from core.errors import Amount, Refused, Subject, refuse
 from core.mole_account.extent_range import extent_limits
 from core.numerics.roots import find_root
@@ -30,6 +33,25 @@ from core.thermochemistry.reaction_properties import EXTRAPOLATED, beyond_range
 
 COLDEST, HOTTEST = 50.0, 6000.0
 """K; between these an adiabatic temperature is looked for, where the data let it."""
+
+
+@dataclass(frozen=True)
+class StatedHeat:
+    """The heat of one reaction as its caller states it.
+
+    Attributes
+    ----------
+    heat : float
+        J per mole of ``of`` consumed or formed; below zero where heat is given off.
+    of : int
+        A substance of the reaction.
+    at : float
+        K.
+    """
+
+    heat: float
+    of: int
+    at: float
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,11 +76,33 @@ class HeatsOfReaction:
 
     @classmethod
     def from_formation(
-        cls, nu: FloatArray, properties: Sequence[StandardProperties]
+        cls,
+        nu: FloatArray,
+        properties: Sequence[StandardProperties],
+        stated: Mapping[int, StatedHeat] | None = None,
     ) -> HeatsOfReaction:
-        """Return those that enthalpies of formation at 298.15 K give."""
-        h = np.array([p.enthalpy for p in properties])
-        return cls(nu, nu @ h, np.full(len(nu), REFERENCE_TEMPERATURE), _capacities(properties))
+        """Return those that enthalpies of formation at 298.15 K give, or that are stated.
+
+        Parameters
+        ----------
+        nu : ndarray, shape (R, S)
+        properties : sequence of StandardProperties, length S
+            With heat capacities, and with enthalpies where a reaction needs them.
+        stated : Mapping[int, StatedHeat], optional
+            By reaction; they win.
+        """
+        said = stated or {}
+        h = np.array([np.nan if p.enthalpy is None else p.enthalpy for p in properties])
+        enthalpies = np.zeros(len(nu))
+        for j, row in enumerate(nu):
+            if j not in said:
+                reacting = row != 0
+                enthalpies[j] = row[reacting] @ h[reacting]
+        at = np.full(len(nu), REFERENCE_TEMPERATURE)
+        made = cls(nu, enthalpies, at, _capacities(properties))
+        for j, one in said.items():
+            made = made.stating(j, one.heat, one.of, one.at)
+        return made
 
     def stating(self, reaction: int, heat: float, of: int, at: float) -> HeatsOfReaction:
         """Return these with one reaction's heat as stated.
@@ -85,6 +129,20 @@ class HeatsOfReaction:
         then = _sensible(self.heat_capacities, self.at)
         change: FloatArray = now @ self.nu.T - (then * self.nu).sum(axis=-1)
         return self.enthalpies + change
+
+    @cached_property
+    def of_substances(self) -> FloatArray:
+        """Enthalpies at 298.15 K that the reactions' heats follow from, J/mol, shape (S,).
+
+        Not those of formation, from which they differ by what every reaction
+        leaves as it is: a balance over the reactions does not see that.
+        """
+        found: FloatArray = np.linalg.pinv(self.nu) @ self.enthalpy(REFERENCE_TEMPERATURE)
+        return found
+
+    def substance_enthalpies(self, temperature: FloatArray) -> FloatArray:
+        """Return ``of_substances`` with the sensible heats, J/mol, shape (..., S), at K (...)."""
+        return self.of_substances + _sensible(self.heat_capacities, temperature)
 
 
 def heat_capacity_flow(
@@ -134,6 +192,7 @@ def adiabatic_temperature(
     heats: HeatsOfReaction,
     properties: Sequence[StandardProperties],
     subject: Subject,
+    held: FloatArray | None = None,
 ) -> FloatArray:
     """Temperature that a stream leaves at when its reactions exchange no heat.
 
@@ -150,6 +209,9 @@ def adiabatic_temperature(
         For what a refusal says of their ranges.
     subject : Subject
         What a refusal is about.
+    held : ndarray, shape (S,), optional
+        In a closed vessel that holds its volume, Z of each substance of the gas, and 0
+        of the others. Left out: at constant pressure.
 
     Returns
     -------
@@ -184,10 +246,12 @@ def adiabatic_temperature(
     # Of sum F0 h(T) + sum xi dH(T) what hangs on T is the sensible heat of the outlet.
     then = (_sensible(heats.heat_capacities, heats.at) * heats.nu).sum(axis=-1)
     wanted: FloatArray = start - (x * (heats.enthalpies - then)).sum(axis=-1)
+    r = np.zeros(len(properties)) if held is None else GAS_CONSTANT * held
+    wanted = wanted - f @ r * t0
 
     def excess(t: FloatArray, case: np.ndarray) -> FloatArray:
         gained = (out[case] * _sensible(heats.heat_capacities, t)).sum(axis=-1)
-        return np.asarray(gained - wanted[case])
+        return np.asarray(gained - out[case] @ r * t - wanted[case])
 
     reach = np.array([_reach(cp) for cp in heats.heat_capacities])
     low = np.where(present, reach[:, 0], COLDEST).max(axis=-1)
@@ -197,11 +261,22 @@ def adiabatic_temperature(
     below, above = excess(bottom, rows) > 0, excess(top, rows) < 0
     if below.any() or above.any():
         case = int(np.flatnonzero(below | above)[0])
-        held = [p for p, there in zip(properties, present[case], strict=True) if there]
+        within = [p for p, there in zip(properties, present[case], strict=True) if there]
         limit = float(high[case] if above[case] else low[case])
-        raise _out_of_reach(bool(above[case]), limit, held, subject)
-    found: FloatArray = find_root(excess, bottom, top, subject=subject).reshape(lead)
-    return found
+        raise _out_of_reach(bool(above[case]), limit, within, subject)
+    # On the side of the inlet where heat is taken up, or given off.
+    warmer = excess(t0, rows) < 0
+    lower, upper = np.where(warmer, t0, bottom), np.where(warmer, top, t0)
+    found: FloatArray = find_root(excess, lower, upper, subject=subject)
+    faults = [
+        fault
+        for i, p in enumerate(properties)
+        if present[:, i].any()
+        for fault in beyond_range((p,), found[present[:, i]], subject)
+    ]
+    if faults:
+        raise Refused(faults)
+    return found.reshape(lead)
 
 
 def complete_extents(reactions: ReactionSet, reaction: int, flows: FloatArray) -> FloatArray:

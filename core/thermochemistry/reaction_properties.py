@@ -70,7 +70,11 @@ class ReactionProperties:
     @property
     def enthalpy_at_reference(self) -> float:
         """Enthalpy of reaction at 298.15 K, J/mol."""
-        return float(sum(nu * p.enthalpy for nu, p in self._pairs()))
+        total = 0.0
+        for nu, p in self._pairs():
+            assert p.enthalpy is not None
+            total += nu * p.enthalpy
+        return total
 
     @property
     def entropy_at_reference(self) -> float:
@@ -170,21 +174,7 @@ class ReactionProperties:
                     {"spread": f"{spread:.2g}", "temperature": t},
                 )
             )
-        for p in self.properties:
-            assert p.heat_capacity is not None
-            if p.heat_capacity.beyond(temperature) > 0:
-                found.append(
-                    Note(
-                        "property-data-extrapolated",
-                        "the heat capacity of {substance} holds from {lowest} to {highest}"
-                        " ({source}); at {temperature} it was taken as it is at the end of that"
-                        " range",
-                        "warning",
-                        subject,
-                        {**_range_of(p), "temperature": t},
-                    )
-                )
-        return tuple(found)
+        return (*found, *extrapolations(self.properties, np.asarray(temperature), subject))
 
     def _pairs(self) -> list[tuple[float, StandardProperties]]:
         return list(zip(self.coefficients, self.properties, strict=True))
@@ -205,6 +195,35 @@ def _range_of(p: StandardProperties) -> dict[str, str | Amount]:
         "highest": Amount(cp.highest, "temperature"),
         "source": p.sources["heat_capacity"],
     }
+
+
+def extrapolations(
+    properties: Sequence[StandardProperties], temperature: FloatArray, subject: Subject
+) -> tuple[Note, ...]:
+    """Return a warning for each heat capacity that temperatures, K, lie outside the range of."""
+    found = []
+    each = np.atleast_1d(temperature)
+    for p in properties:
+        cp = p.heat_capacity
+        assert cp is not None
+        beyond = [cp.beyond(t) for t in each]
+        farthest = int(np.argmax(beyond))
+        if beyond[farthest] > 0:
+            found.append(
+                Note(
+                    "property-data-extrapolated",
+                    "the heat capacity of {substance} holds from {lowest} to {highest}"
+                    " ({source}); at {temperature} it was taken as it is at the end of that"
+                    " range",
+                    "warning",
+                    subject,
+                    {
+                        **_range_of(p),
+                        "temperature": Amount(float(each[farthest]), "temperature"),
+                    },
+                )
+            )
+    return tuple(found)
 
 
 def beyond_range(

@@ -472,6 +472,14 @@ case(
     "/reactions/0/rate/of",
 )
 case(
+    "heat-of-absent-substance",
+    volume(
+        feed__concentrations__N2="1 mol/l",
+        reactions__0__enthalpy={"heat": "-60 kJ/mol", "of": "N2", "at": "25 degC"},
+    ),
+    "/reactions/0/enthalpy/of",
+)
+case(
     "rate-constant-unit",
     volume(reactions__0__rate__constant="0.3 m3/(kmol min)"),
     "/reactions/0/rate/constant",

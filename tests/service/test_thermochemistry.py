@@ -7,6 +7,7 @@ import re
 import pytest
 from numpy.testing import assert_allclose
 
+from schemas.examples import EXAMPLES
 from tests.support import assert_refused, changed, post, result, value
 
 RATE = {
@@ -148,7 +149,8 @@ def test_the_answer_names_every_source_and_range(client):
     assert co["heat_capacity"]["highest"] == {"value": 3000.0, "unit": "K"}
     assert "property data" in answer["provenance"]["data"]
     # Without a look-up there is nothing to tell.
-    plain = post(client, "volume", with_constant(1.44)).get_json()
+    request = next(e.request for e in EXAMPLES if e.name == "hydrolysis-in-a-stirred-tank")
+    plain = post(client, "volume", request).get_json()
     assert "properties" not in plain["provenance"]
 
 
