@@ -545,7 +545,7 @@ class _Writer:
         flows = {n: f"{self.words.flow} {n}" for i, n in named if not (inside[i] and known)}
         for title, columns in (("Composition", fractions), ("What is not in the gas", flows)):
             if self.feed.phase == "liquid" and columns is flows:
-                title = "Flows"  # noqa: PLW2901
+                title = "Flows"
             if columns:
                 plots.append(self._share_plot(f"{title} against {over}", columns, table, x_label))
         return tuple(plots)
@@ -561,12 +561,13 @@ class _Writer:
             columns.items(), key=lambda each: max(v or 0.0 for v in table.columns[each[1]])
         )
         what = column.removesuffix(f" {name}")
+        shown_of = what if len(columns) > 1 else f"{what} of {name}"
         unit = table.units.get(column, "1")
         shown = (over, *columns.values())
         return Plot(
             title,
             x_label,
-            what if unit == "1" else f"{what} [{unit}]",
+            shown_of if unit == "1" else f"{shown_of} [{unit}]",
             tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
             _course(
                 f"the largest {what} is that of {name}, which",

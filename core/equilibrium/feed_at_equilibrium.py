@@ -23,6 +23,7 @@ from core.equilibrium.equilibrium import (
 from core.equilibrium.newton import IntArray
 from core.errors import Fault, Note, Refused, Subject, refuse
 from core.mole_account.extent_range import ConversionRange, conversion_range
+from core.mole_account.stoichiometric_table import SOLVENT_UNKNOWN, no_concentrations
 from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConstant
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
@@ -526,6 +527,10 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
                 "first": row,
             },
         )
+    if problem.feed.volumetric_flow is None:
+        yield no_concentrations(problem.feed)
+    if problem.feed.solvent_unknown:
+        yield SOLVENT_UNKNOWN
     yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
     equation = problem.equation or problem.witness
     if problem.feed.phase == "gas" and equation is not None:
