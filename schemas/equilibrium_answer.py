@@ -13,6 +13,7 @@ from core.arrays import FloatArray
 from core.equilibrium.feed_at_equilibrium import (
     FeedReached,
     constant_subject,
+    told_once,
 )
 from core.equilibrium.outlet import ReactionApproach
 from core.errors import Note, Subject
@@ -243,7 +244,7 @@ class _Writer:
             assumed.append(CONSTANT_DENSITY)
         sources = self._sources()
         told = () if self.approach is None else self.approach[1]
-        notes = (*edge.read_notes, *self.reached.notes, *told, SCREENING)
+        notes = (*edge.read_notes, *told_once((*self.reached.notes, *told)), SCREENING)
         return Answer(
             result=result,
             notes=edge.notes(notes),

@@ -946,3 +946,14 @@ def test_concentrations_and_mole_fractions_that_are_not_known_say_why(client):
     dissolved = changed(LIQUID, feed__flows=..., feed__concentrations={"A": "5 kmol/m3"})
     assert ask(client, dissolved)["outlet"]["species"]["A"]["mole_fraction"] is None
     assert "mole-fractions-not-known" in codes(client, dissolved)
+
+
+def test_what_a_sweep_is_warned_of_at_its_ends_is_told_once(client):
+    correlation = {
+        "ln_coefficients": {"constant": -4.33, "inverse_temperature": "4577.8 K"},
+        "between": ["600 K", "800 K"],
+    }
+    within = changed(SHIFT, reactions__0__equilibrium_constant=correlation)
+    assert "correlation-extrapolated" not in codes(client, within)
+    sweep = {"over": "temperature", "from": "500 K", "to": "900 K", "points": 3}
+    assert codes(client, within, sweep=sweep).count("correlation-extrapolated") == 1
