@@ -106,7 +106,9 @@ class EquilibriumResult(OpenSchema):
     equilibrium_constants = numbers_by_name(
         EquilibriumConstantResultSchema, "By reaction.", required=True
     )
-    fugacity_coefficients = numbers_by_name(text="By substance of a real gas.")
+    fugacity_coefficients = numbers_by_name(
+        text="By substance of a real gas; null where beyond what a number of a computer holds."
+    )
     condensed = Map(
         fields.Boolean(),
         at_least=0,
@@ -223,9 +225,9 @@ class _Writer:
         }
         if self.question.gas is not None:
             inside = np.flatnonzero(self.feed.in_phase).tolist()
-            coefficients = np.exp(states.ln_fugacity_coefficients[0])
+            each = states.ln_fugacity_coefficients[0].tolist()
             result["fugacity_coefficients"] = {
-                self.names[i]: edge.number(float(coefficients[i]), "dimensionless") for i in inside
+                self.names[i]: self._number(_power(each[i]), "dimensionless") for i in inside
             }
         pure = np.flatnonzero(~self.feed.in_phase).tolist()
         if pure:
@@ -316,9 +318,8 @@ class _Writer:
             unit = self._stated_unit(subject) or spell(expected_unit_parts(constant.kind, total))
             ln = float(np.broadcast_to(form.ln_at(t, subject), t.shape)[0])
             ln_value = ln - math.log(find_unit(unit).factor)
-            value = math.exp(ln_value) if abs(ln_value) < LARGEST_EXPONENT else None
             told[id_] = {
-                "value": value,
+                "value": _finite(_power(ln_value)),
                 "unit": unit,
                 "natural_logarithm": self.edge.number(
                     float(stated.one_ln_k(j, t)[0]), "dimensionless"
@@ -592,6 +593,11 @@ def _short_of(approach: Json, reaction: str) -> str:
     if abs(approach["value"]) <= 2 * approach["u"]:
         told_ += ", which its readings cannot tell from it"
     return told_ + "."
+
+
+def _power(ln: float) -> float:
+    """Return e to a power; not a number where that is beyond what a number of a computer holds."""
+    return math.exp(ln) if abs(ln) < LARGEST_EXPONENT else math.nan
 
 
 def _finite(value: Any) -> float | None:
