@@ -13,6 +13,7 @@ from core.arrays import FloatArray
 from core.equilibrium.feed_at_equilibrium import (
     FeedReached,
     constant_subject,
+    told_once,
 )
 from core.equilibrium.outlet import ReactionApproach
 from core.errors import Note, Subject
@@ -88,7 +89,9 @@ class EquilibriumResult(OpenSchema):
     equilibrium_constants = numbers_by_name(
         EquilibriumConstantResultSchema, "By reaction.", required=True
     )
-    fugacity_coefficients = numbers_by_name(text="By substance of a real gas.")
+    fugacity_coefficients = numbers_by_name(
+        text="By substance of a real gas; null where beyond what a number of a computer holds."
+    )
     condensed = Map(
         fields.Boolean(),
         at_least=0,
@@ -202,9 +205,9 @@ class _Writer:
         }
         if self.question.gas is not None:
             inside = np.flatnonzero(self.feed.in_phase).tolist()
-            coefficients = np.exp(states.ln_fugacity_coefficients[0])
+            each = states.ln_fugacity_coefficients[0].tolist()
             result["fugacity_coefficients"] = {
-                self.names[i]: edge.number(float(coefficients[i]), "dimensionless") for i in inside
+                self.names[i]: self._number(_power(each[i]), "dimensionless") for i in inside
             }
         pure = np.flatnonzero(~self.feed.in_phase).tolist()
         if pure:
@@ -223,7 +226,7 @@ class _Writer:
             assumed.append(CONSTANT_DENSITY)
         sources = self._sources()
         told = () if self.approach is None else self.approach[1]
-        notes = (*edge.read_notes, *self.reached.notes, *told, SCREENING)
+        notes = (*edge.read_notes, *told_once((*self.reached.notes, *told)), SCREENING)
         return Answer(
             result=result,
             notes=edge.notes(notes),
@@ -295,9 +298,8 @@ class _Writer:
             unit = self._stated_unit(subject) or spell(expected_unit_parts(constant.kind, total))
             ln = float(np.broadcast_to(form.ln_at(t, subject), t.shape)[0])
             ln_value = ln - math.log(find_unit(unit).factor)
-            value = math.exp(ln_value) if abs(ln_value) < LARGEST_EXPONENT else None
             told[id_] = {
-                "value": value,
+                "value": _finite(_power(ln_value)),
                 "unit": unit,
                 "natural_logarithm": self.edge.number(
                     float(stated.one_ln_k(j, t)[0]), "dimensionless"
@@ -524,12 +526,13 @@ class _Writer:
             columns.items(), key=lambda each: max(v or 0.0 for v in table.columns[each[1]])
         )
         what = column.removesuffix(f" {name}")
+        shown_of = what if len(columns) > 1 else f"{what} of {name}"
         unit = table.units.get(column, "1")
         shown = (over, *columns.values())
         return Plot(
             title,
             x_label,
-            what if unit == "1" else f"{what} [{unit}]",
+            shown_of if unit == "1" else f"{shown_of} [{unit}]",
             tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
             _course(
                 f"the largest {what} is that of {name}, which",
@@ -553,6 +556,11 @@ def _short_of(approach: Json, reaction: str) -> str:
     if abs(approach["value"]) <= 2 * approach["u"]:
         told_ += ", which its readings cannot tell from it"
     return told_ + "."
+
+
+def _power(ln: float) -> float:
+    """Return e to a power; not a number where that is beyond what a number of a computer holds."""
+    return math.exp(ln) if abs(ln) < LARGEST_EXPONENT else math.nan
 
 
 def _finite(value: Any) -> float | None:

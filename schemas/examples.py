@@ -50,7 +50,12 @@ def _load() -> tuple[Example, ...]:
 
 EXAMPLES = _load()
 
-PASTED = ("high-temperature-shift", "shift-converter-outlet", "hydrolysis-in-a-stirred-tank")
+PASTED = (
+    "high-temperature-shift",
+    "shift-converter-outlet",
+    "hydrolysis-in-a-stirred-tank",
+    "reforming-and-shift-at-equilibrium",
+)
 """One of each calculation, for a person's first minute."""
 
 

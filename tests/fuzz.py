@@ -49,7 +49,8 @@ from service.app import create_app
 from service.statuses import STATUSES
 
 TABLE, CONVERSION, VOLUME = "stoichiometric-table", "conversion", "volume"
-ROUTES = (TABLE, CONVERSION, VOLUME)
+EQUILIBRIUM = "equilibrium"
+ROUTES = (TABLE, CONVERSION, VOLUME, EQUILIBRIUM)
 Json = Any
 
 
@@ -501,6 +502,11 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
         name = path.rsplit("/", 1)[1]
         if name in _NULLS or "/reconciliation/readings/" in path:
             continue
+        # The pressure of a liquid need not be stated; rows without an answer are counted.
+        if route == EQUILIBRIUM and (path == "/pressure" or path.startswith("/sweep/")):
+            continue
+        if path.startswith("/equilibrium_constants/") and name == "value":
+            continue
         kind = _null_kind(path)
         if not codes & _NULL_NOTES.get(kind, frozenset(codes)):
             broken.append((f"null-without-note {kind}", f"{path}; notes {sorted(codes)}"))
@@ -569,6 +575,8 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
 
 
 _NULL_NOTES: dict[str, frozenset[str]] = {
+    "heat": frozenset({"heat-not-known"}),
+    "approach": frozenset({"approach-not-known"}),
     "concentration": frozenset({"concentrations-not-known", "per-mole-of-key"}),
 }
 
@@ -582,6 +590,7 @@ def _null_kind(path: str) -> str:
         "key_consumed_by",
         "key_produced_by",
         "space_time_yields",
+        "approach",
     ):
         if f"/{name}/" in path:
             return name
@@ -1369,6 +1378,64 @@ class Maker:
         if self.chance(0.2):
             made["standard_pressure"] = rnd.choice(["1 atm", "1 bar", "0 Pa"])
         return made
+
+    def equilibrium(self) -> tuple[Json, float | None]:
+        rnd = self.rnd
+        system, fed, left, _ = self.account()
+        made = self.base(system)
+        constants: list[Json] = [
+            {"from": "thermochemistry"},
+            {"from": "thermochemistry"},
+            rnd.choice([2.5, 1e-12, 1e12, "0.3 bar^-2", "2 m3/kmol"]),
+            {"at": "600 K", "constant": rnd.choice([0.1, 40]), "enthalpy": "-40 kJ/mol"},
+            self.correlation(""),
+        ]
+        made["reactions"] = [
+            {**(r if isinstance(r, dict) else {"equation": r}), "equilibrium_constant": k}
+            for r, k in zip(
+                made["reactions"], rnd.choices(constants, k=len(made["reactions"])), strict=True
+            )
+        ]
+        if self.chance(0.15):
+            self.state_properties(made, list(fed))
+        measured = self.chance(0.25)
+        made["feed"], _ = self.side(system, fed, 0.2, rnd.choice([None, "text", "rel"]))
+        self.conditions(made["feed"], 0.9)
+        if measured:
+            made["outlet"], _ = self.side(system, left, 0.7, rnd.choice([None, "rel", "zero"]))
+            self.conditions(made["outlet"], 0.95)
+        if self.chance(0.3) and "flows" in made["feed"]:
+            made["feed"]["amounts"] = {n: f"{f!r} kmol" for n, f in fed.items()}
+            del made["feed"]["flows"]
+        if self.chance(0.5):
+            made["hold"] = rnd.choice(
+                ["temperature-pressure", "temperature-volume", "enthalpy-pressure", "energy-volume"]
+            )
+        if self.chance(0.3):
+            made["at"] = rnd.choice(
+                [
+                    {"temperature": "900 K"},
+                    {"temperature": "300 K", "pressure": "300 bar"},
+                    {"volume": rnd.choice(["1 ml", "20 m3", "1e9 m3"])},
+                    {"pressure": "1e-9 Pa"},
+                ]
+            )
+        if self.chance(0.3):
+            made["gas_model"] = rnd.choice(["ideal", "peng-robinson", "soave-redlich-kwong"])
+            if self.chance(0.3):
+                pair = rnd.choices(list(fed), k=2)
+                made["interactions"] = [{"between": pair, "parameter": rnd.choice([0, 0.1, -1, 1])}]
+        if self.chance(0.3):
+            made["sweep"] = rnd.choice(
+                [
+                    {"over": "temperature", "from": "400 K", "to": "1200 K", "points": 7},
+                    {"over": "temperature", "from": "900 K", "to": "300 K", "points": 2},
+                    {"over": "temperature", "from": "10 K", "to": "1e4 K", "points": 20},
+                    {"over": "pressure", "from": "1 Pa", "to": "1 kbar", "spacing": "logarithmic"},
+                    {"over": "pressure", "from": "0 barg", "to": "90 barg", "points": 500},
+                ]
+            )
+        return made, None
 
     def state_properties(self, made: dict[str, Any], names: list[str]) -> None:
         """State properties of some substances, in a request's own declaration of them."""
@@ -2204,11 +2271,12 @@ def one_case(maker: Maker, corpus: list[tuple[str, Json]]) -> tuple[str, bytes, 
         document = maker.from_schema(request_schema(route))
         rounds = rnd.choice([0, 0, 1])
     else:
-        route = rnd.choice([CONVERSION, CONVERSION, TABLE, VOLUME])
+        route = rnd.choice([CONVERSION, CONVERSION, TABLE, VOLUME, EQUILIBRIUM])
         make: Callable[[], tuple[Json, float | None]] = {
             CONVERSION: maker.conversion,
             TABLE: maker.table,
             VOLUME: maker.volume,
+            EQUILIBRIUM: maker.equilibrium,
         }[route]
         document, truth = make()
         document = copy.deepcopy(document)
@@ -2297,7 +2365,7 @@ def run(
             status2, raw2, _, _ = caller.post(route, body)
             if (status2, raw2) != (status, tell["answer"]):
                 keep("not-deterministic", route, body, f"{status} {status2}", case, tell)
-        if status == 200 and route == TABLE and rnd.random() < 0.1:
+        if status == 200 and route in (TABLE, EQUILIBRIUM) and rnd.random() < 0.1:
             status2, raw2, media, _ = caller.post(route, body, Accept="text/csv")
             if status2 != 200 or media != "text/csv":
                 keep(f"csv {status2}", route, body, caller.failure(), case, tell)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Literal
@@ -18,6 +18,7 @@ from core.equilibrium.newton import IntArray
 from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Hold, Mixture
 from core.errors import Fault, Note, Refused, Subject, refuse
 from core.mole_account.extent_range import ConversionRange, conversion_range
+from core.mole_account.stoichiometric_table import SOLVENT_UNKNOWN, no_concentrations
 from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConstant
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
@@ -480,12 +481,26 @@ def _heat(problem: FeedAtEquilibrium, states: Equilibrium, start: float) -> Floa
     return heat
 
 
+def told_once(notes: Iterable[Note]) -> tuple[Note, ...]:
+    """Return the notes without those that say of one thing again what was said at another state."""
+    first: dict[tuple[str, Subject, str], Note] = {}
+    for note in notes:
+        first.setdefault((note.code, note.subject, str(note.facts.get("substance"))), note)
+    return tuple(first.values())
+
+
 def _notes(reached: FeedReached) -> Iterator[Note]:
     problem, states = reached.problem, reached.states
     reactions = problem.reactions
-    temperature = float(states.temperature[0])
-    for j, constant in enumerate(problem.constants):
-        yield from constant.notes(temperature, constant_subject(reactions, j))
+    known = states.temperature[~np.isnan(states.temperature)]
+    # Of a sweep its ends tell what lies between them, too.
+    temperatures = [float(known[0]), float(known.min()), float(known.max())]
+    yield from told_once(
+        note
+        for j, constant in enumerate(problem.constants)
+        for temperature in temperatures
+        for note in constant.notes(temperature, constant_subject(reactions, j))
+    )
     written_one_way = [r.id for r in reactions.reactions if not r.reversible]
     if written_one_way:
         yield Note(
@@ -518,6 +533,10 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
                 "first": row,
             },
         )
+    if problem.feed.volumetric_flow is None:
+        yield no_concentrations(problem.feed)
+    if problem.feed.solvent_unknown:
+        yield SOLVENT_UNKNOWN
     yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
     equation = problem.equation or problem.witness
     if problem.feed.phase == "gas" and equation is not None:

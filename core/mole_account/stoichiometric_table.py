@@ -274,7 +274,7 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
     if inlet.solvent_unknown:
         notes.append(SOLVENT_UNKNOWN)
     if states.volumetric_flows is None:
-        notes.append(_no_concentrations(inlet))
+        notes.append(no_concentrations(inlet))
     if states.extents is None:
         notes.append(
             Note(
@@ -535,7 +535,8 @@ def _fails_because(problem: TableProblem, account: _Account) -> tuple[str, ...]:
     return tuple(fails)
 
 
-def _no_concentrations(inlet: Stream) -> Note:
+def no_concentrations(inlet: Stream) -> Note:
+    """Say what would tell the concentrations of a stream."""
     if inlet.phase == "gas":
         return Note(
             "concentrations-not-known",

@@ -13,6 +13,7 @@ NEARLY_IDEAL = (0.95, 1.05)
 """Z between which a gas passes for ideal."""
 SAME_CONSTANT = 0.05
 """|ln| of what fugacity coefficients make of a constant, up to which it passes for the same."""
+_READ_AS_A_NUMBER = 100.0
 
 
 def remark_on_gas(
@@ -75,5 +76,12 @@ def remark_on_constants(
         " Ask for one of the other gas models.",
         "warning",
         subject,
-        {"reaction": reactions[int(j)], "factor": f"{float(np.exp(-shift[row, j])):.3g}"},
+        {"reaction": reactions[int(j)], "factor": _power(-float(shift[row, j]))},
     )
+
+
+def _power(ln: float) -> str:
+    """Return e to a power in three digits, however large it is."""
+    if abs(ln) < _READ_AS_A_NUMBER:
+        return f"{np.exp(ln):.3g}"
+    return f"10^{ln / np.log(10):.0f}"

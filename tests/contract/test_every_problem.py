@@ -601,7 +601,7 @@ BURNT: dict[str, Any] = {
         "phase": "gas",
         "temperature": "2500 K",
         "pressure": "1 bar",
-        "flows": {"CH4": "1 mol/s", "O2": "2 mol/s"},
+        "flows": {"CH4": "1 kmol/h", "O2": "2 kmol/h"},
     },
 }
 LIME: dict[str, Any] = {
@@ -612,7 +612,7 @@ LIME: dict[str, Any] = {
         "phase": "gas",
         "temperature": "1000 K",
         "pressure": "1 bar",
-        "flows": {"CaCO3": "1 mol/s", "CaO": "3 mol/s", "CO2": "1 mol/s"},
+        "flows": {"CaCO3": "1 kmol/h", "CaO": "3 kmol/h", "CO2": "1 kmol/h"},
     },
 }
 

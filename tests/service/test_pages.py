@@ -1,12 +1,16 @@
 from __future__ import annotations
 
 import html
+import re
+import shutil
+import subprocess
 import xml.etree.ElementTree as ElementTree
 from html.parser import HTMLParser
 
 import pytest
 
 from schemas.answer import Answer, Table
+from schemas.examples import EXAMPLES
 from schemas.page import Curve, Page, Plot, told
 from service import drawing, pages
 
@@ -132,3 +136,97 @@ def test_an_interval_is_told_with_its_coverage():
     number = {"value": 1.0, "unit": "1", "interval": [0.9, 1.1], "coverage": 0.95}
     assert pages.interval(number) == "0.9 to 1.1 (95 %)"
     assert pages.interval({"value": 1.0, "unit": "1"}) == ""
+
+
+EQUILIBRIA = [e for e in EXAMPLES if e.operation == "equilibrium" and e.status == 200]
+
+
+@pytest.fixture(scope="module")
+def equilibrium_pages(app):
+    client = app.test_client()
+    return {
+        e.name: client.post("/v1/equilibrium", json=e.request, headers={"Accept": "text/html"})
+        for e in EQUILIBRIA
+    }
+
+
+@pytest.mark.parametrize("name", [e.name for e in EQUILIBRIA])
+def test_the_page_of_an_equilibrium(client, equilibrium_pages, name):
+    example = next(e for e in EQUILIBRIA if e.name == name)
+    response = equilibrium_pages[name]
+    assert response.mimetype == "text/html"
+    assert response.headers["Content-Security-Policy"] == pages.POLICY
+    read = Reader()
+    read.feed(response.get_data(as_text=True))
+    text = " ".join(" ".join(read.text).split())
+    answer = client.post("/v1/equilibrium", json=example.request).get_json()
+    found = answer["result"]
+    conversion = 100 * found["conversion"]["value"]
+    assert f"the equilibrium conversion of {found['key']} is {conversion:.4g} %" in text
+    for note in (*answer["notes"], *answer["assumed"]):
+        assert note["detail"] in text
+    for substance, said in found["outlet"]["species"].items():
+        assert substance in text
+        assert f"{said['flow']['value']:.5g}" in text
+    plots = 0
+    if "sweep" in found:
+        plots = 2 + ("condensed" in found)
+    assert len(read.images) == plots
+    assert all(image["alt"].endswith(".") for image in read.images)
+    if "approach" in found:
+        approach = next(iter(found["approach"].values()))["approach"]
+        assert f"The measured outlet is {told(approach)} short of the equilibrium" in text
+
+
+def test_the_page_tells_points_without_an_answer(client):
+    lime = {
+        "species": {"CaCO3": {"phase": "solid"}, "CaO": {"phase": "solid"}},
+        "reactions": [{"equation": "CaCO3 <=> CaO + CO2", "equilibrium_constant": "1 bar"}],
+        "key": "CaCO3",
+        "feed": {
+            "phase": "gas",
+            "temperature": "1150 K",
+            "pressure": "0.1 bar",
+            "flows": {"CaCO3": "1 mol/s", "CaO": "3 mol/s", "CO2": "1 mol/s"},
+        },
+        "sweep": {"over": "pressure", "from": "2 bar", "to": "4 bar", "points": 3},
+    }
+    page = client.post("/v1/equilibrium", json=lime, headers={"Accept": "text/html"})
+    assert page.status_code == 200
+    assert "is not known anywhere on the sweep" in page.get_data(as_text=True)
+
+
+CHROMIUM = shutil.which("chromium")
+
+
+@pytest.mark.skipif(CHROMIUM is None, reason="no browser is installed")
+def test_a_browser_prints_the_page_on_a4(equilibrium_pages, tmp_path):
+    page = tmp_path / "page.html"
+    page.write_bytes(equilibrium_pages["carbon-beside-carbon-monoxide"].get_data())
+    shown = subprocess.run(
+        [
+            CHROMIUM,
+            "--headless",
+            "--no-sandbox",
+            "--disable-gpu",
+            "--disable-quic",
+            "--no-first-run",
+            "--disable-background-networking",
+            "--disable-component-update",
+            "--disable-sync",
+            f"--user-data-dir={tmp_path / 'profile'}",
+            "--no-pdf-header-footer",
+            f"--print-to-pdf={tmp_path / 'page.pdf'}",
+            page.as_uri(),
+        ],
+        capture_output=True,
+        timeout=60,
+        check=False,
+    )
+    assert shown.returncode == 0
+    printed = (tmp_path / "page.pdf").read_bytes()
+    assert printed.startswith(b"%PDF-")
+    # Two or three sheets of A4, upright.
+    boxes = re.findall(rb"/MediaBox ?\[0 0 ([0-9.]+) ([0-9.]+)\]", printed)
+    assert 1 <= len(boxes) <= 4
+    assert all(594 < float(w) < 597 and 841 < float(h) < 843 for w, h in boxes)
