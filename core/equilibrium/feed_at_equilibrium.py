@@ -203,12 +203,12 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
 
 
 def _conversion(problem: FeedAtEquilibrium, states: Equilibrium) -> FloatArray:
-    """Return the conversion of the key, by what keeps more digits: its change, or what is left."""
+    """Return the conversion of the key: by what is left, or where it is small by the extents."""
     fed = problem.feed.flows[problem.key]
     change = states.extents @ problem.reactions.nu[:, problem.key]
-    by_change = 0.0 - change / fed
+    by_extents = 0.0 - change / fed
     by_what_is_left = 1.0 - states.amounts[:, problem.key] / fed
-    conversion: FloatArray = np.where(by_change > 0.5, by_what_is_left, by_change)
+    conversion: FloatArray = np.where(np.abs(by_extents) < 1e-4, by_extents, by_what_is_left)
     return conversion
 
 
