@@ -142,14 +142,17 @@ def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
     flow = np.where(metered, np.abs(measured[:, :-1]) / per_mole, 0.0).max(axis=1, initial=0.0)
     flow = np.where(flow > 0, flow, 1.0)
     share = account.of_flow + 0.05 * account.of_extent
+    # What leaves is shared out, so that the last outlet stream is left its part.
+    feeds, outlets = len(account.problem.feed), len(account.problem.outlet)
+    share[[of.kind == "flow" and of.stream >= feeds for of in account.unknowns]] /= outlets or 1
     nominal: FloatArray = flow[:, None] * (share / max(1, np.count_nonzero(account.of_flow)))
     for column in np.flatnonzero(share == 0).tolist():
         unknown = account.unknowns[column]
         if unknown.kind == "volume":
             nominal[:, column] = _volume(block, unknown.stream, flow)
         elif unknown.kind == "scale":
-            peaks = (readings.stream == unknown.stream) & ~readings.flow & (readings.cleared >= 0)
-            values = np.where(active[:, :-1] & peaks, measured[:, :-1], 0.0).sum(axis=1)
+            peaks = account.writer.analyses[unknown.stream]
+            values = np.where(active[:, peaks], measured[:, peaks], 0.0).sum(axis=1)
             nominal[:, column] = np.where(values > 0, values, 1.0)
         else:
             reading = getattr(account.streams[unknown.stream], unknown.kind)
