@@ -47,6 +47,8 @@ ROUNDING = 1e-11
 LEAST_DAMPING = 1e-3
 MOST_DAMPING = 1e8
 ROUNDING_GAP = 1e-9
+ROUNDING_VARIANCE = 1e-6
+"""How far rounding may put a variance below zero, of what it would be with all others known."""
 SINGULAR = 1e13
 """Inflation of a variance beyond which double precision cannot tell unknowns apart."""
 
@@ -390,9 +392,11 @@ def _settled(of: _Step, previous: FloatArray, plain: BoolArray) -> BoolArray:
     """
     known = plain & (previous > 0)
     rate = np.where(known, of.decrement / np.where(known, previous, 1.0), 1.0)
-    left = of.decrement * rate * rate
-    small = (of.decrement < SMALL_DECREMENT) & (left < NEGLIGIBLE_DECREMENT)
-    small |= of.decrement < VERY_SMALL_DECREMENT
+    left = np.abs(of.decrement) * rate * rate
+    # Below zero it is rounding alone, and as large as that.
+    decrement = np.abs(of.decrement)
+    small = (decrement < SMALL_DECREMENT) & (left < NEGLIGIBLE_DECREMENT)
+    small |= decrement < VERY_SMALL_DECREMENT
     return np.asarray((small & of.met) | (of.relative < ROUNDING_STEP))
 
 
@@ -500,8 +504,11 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     rest = _rest(fit, z, natural)
     slopes, covariance, inverse = rest.slopes, rest.covariance, rest.inverse
     n, c = z.shape[1], len(fit.stiff)
-    inflation = inverse[:, :n, :n].diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
-    inflation = np.where(np.isnan(inflation), np.inf, inflation)
+    own = inverse[:, :n, :n].diagonal(axis1=1, axis2=2)
+    inflation = own.max(axis=-1, initial=0.0)
+    # A variance below zero is what rounding leaves of one that cannot be told.
+    lost = np.isnan(inflation) | (own.min(axis=-1, initial=0.0) < -ROUNDING_VARIANCE)
+    inflation = np.where(lost, np.inf, inflation)
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
     step = rest.size * rest.step[:, :n]

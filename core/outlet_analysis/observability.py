@@ -449,5 +449,10 @@ def _settling(
             break
         chosen_rows.append(best)
         if settles(chosen_rows):
-            return [tuple(candidates[k].words for k in chosen_rows)]
+            # What was taken first may be told by what came later.
+            for k in tuple(chosen_rows):
+                fewer = [j for j in chosen_rows if j != k]
+                chosen_rows = fewer if settles(fewer) else chosen_rows
+            # A stream of its own serves all streams from whose samples it is removed.
+            return [tuple(dict.fromkeys(candidates[k].words for k in chosen_rows))]
     return found

@@ -19,9 +19,19 @@ from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.reconciliation import estimate
 from tests.core.outlet_analysis.definitions import WELL_CONDITIONED, compare
-from tests.core.outlet_analysis.random_accounts import State, random_problem, with_noise
+from tests.core.outlet_analysis.random_accounts import (
+    State,
+    can_be_sampled,
+    measured,
+    predicted,
+    random_problem,
+    with_noise,
+)
+from tests.core.outlet_analysis.suggestions import fault_of, outcome, suggestions, thinned
 
 SEED = 20260201
+FAR = 0.01
+"""Difference over u that would mislead."""
 
 
 def estimated(
@@ -50,6 +60,7 @@ class Minima:
 
     compared: int = 0
     ill_conditioned: int = 0
+    unwarned: int = 0
     redundant: int = 0
     difference: float = 0.0
     gradient: float = 0.0
@@ -65,6 +76,8 @@ def minima(count: int = 2000, seed: int = SEED) -> Minima:
         of.form = max(of.form, one.form)
         if one.condition > WELL_CONDITIONED:
             of.ill_conditioned += 1
+            warned = any(note.code == "ill-conditioned" for note in found.notes)
+            of.unwarned += one.difference > FAR and not warned
             continue
         of.compared += 1
         of.redundant += one.freedom > 0
@@ -73,7 +86,52 @@ def minima(count: int = 2000, seed: int = SEED) -> Minima:
     return of
 
 
-RUNS = {"minima": minima}
+@dataclass
+class Settling:
+    """What is said to settle random accounts with too few readings."""
+
+    refused: int = 0
+    without_suggestion: int = 0
+    suggested: int = 0
+    together: int = 0
+    """Suggestions of more than one reading."""
+    outcomes: Counter[str] = field(default_factory=Counter)
+    not_settled: list[tuple[int, str]] = field(default_factory=list)
+    not_minimal: list[tuple[int, str]] = field(default_factory=list)
+
+
+def settling(count: int = 600, seed: int = SEED) -> Settling:
+    """Ask accounts that were refused again, with what was suggested and with parts of it."""
+    rng = np.random.default_rng(seed)
+    of = Settling()
+    tries = 0
+    while of.refused < count:
+        tries += 1
+        problem, state = random_problem(rng)
+        few = thinned(rng, problem)
+        if not state.extents.all() or not can_be_sampled(few, state):
+            continue
+        few = measured(few, predicted(few, state))
+        fault = fault_of(few)
+        if fault is None or fault.code != "under-determined":
+            continue
+        of.refused += 1
+        of.without_suggestion += not suggestions(fault)
+        for options in suggestions(fault):
+            of.suggested += 1
+            of.together += len(options) > 1
+            said = (tries, " together with ".join(options))
+            came_of_it = outcome(few, options, state)
+            of.outcomes[came_of_it] += 1
+            if came_of_it in ("under-determined", "assumed"):
+                of.not_settled.append(said)
+            for k in range(len(options) if len(options) > 1 else 0):
+                if outcome(few, options[:k] + options[k + 1 :], state) == "settled":
+                    of.not_minimal.append(said)
+    return of
+
+
+RUNS = {"minima": minima, "settling": settling}
 
 
 def main(names: list[str]) -> None:

@@ -6,7 +6,7 @@ over flows, for holding the forms of the core against.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Any
@@ -278,6 +278,26 @@ def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
     reactions; flow or batch; with meters of every kind or without any; in
     every basis, with removals, lumps, balances and normalised values.
     """
+    while True:
+        problem, state = _drawn(rng)
+        if can_be_sampled(problem, state):
+            return problem, state
+
+
+def can_be_sampled(problem: AccountProblem, state: State) -> bool:
+    """Whether something is left to analyse of what flows in every stream."""
+    for stream, flows in zip(
+        (*problem.feed, *problem.outlet), (*state.feed, *state.outlet), strict=True
+    ):
+        own = counted_in(problem, stream)
+        if stream.analysis is not None:
+            own[[removal.substance for removal in stream.analysis.removed]] = 0.0
+        if not own @ flows > 0:
+            return False
+    return True
+
+
+def _drawn(rng: np.random.Generator) -> tuple[AccountProblem, State]:
     substances = int(rng.integers(4, 9))
     reactions = random_reactions(rng, substances, int(rng.integers(1, 4)))
     liquid = rng.random() < 0.3
@@ -428,6 +448,77 @@ def _analysis(
         balance=balance,
         normalised=normalised,
     )
+
+
+def mapped(problem: AccountProblem, change: Callable[[Measurement], Measurement]) -> AccountProblem:
+    """The problem with every measurement changed, and no series."""
+
+    def of(measurement: Measurement | None) -> Measurement | None:
+        return None if measurement is None else change(measurement)
+
+    def stream(old: MeteredStream) -> MeteredStream:
+        analysis = old.analysis
+        if analysis is not None:
+            components = tuple(
+                replace(c, measurement=change(c.measurement)) for c in analysis.components
+            )
+            analysis = replace(analysis, components=components)
+        return replace(
+            old,
+            flows=tuple(replace(f, measurement=change(f.measurement)) for f in old.flows),
+            analysis=analysis,
+            temperature=of(old.temperature),
+            pressure=of(old.pressure),
+            density=of(old.density),
+        )
+
+    return replace(
+        problem,
+        feed=tuple(stream(s) for s in problem.feed),
+        outlet=tuple(stream(s) for s in problem.outlet),
+        series={},
+    )
+
+
+def measured(
+    problem: AccountProblem, values: Mapping[Place, float], u_rel: float = 0.01
+) -> AccountProblem:
+    """The problem with the values that its readings would have."""
+
+    def read(of: Measurement) -> Measurement:
+        value = values.get(of.subject, of.value)
+        return Measurement(value, u_rel * abs(value) + 1e-6, of.subject)
+
+    return mapped(problem, read)
+
+
+def one_sample(problem: AccountProblem, k: int) -> AccountProblem:
+    """Sample ``k`` of a series as a problem of single readings."""
+
+    def single(reading: Measurement) -> Measurement:
+        of = problem.series.get(reading.subject)
+        if of is None:
+            return reading
+        kind = 0 if of.bound is None else int(of.bound[k])
+        bound: Any = {0: None, BELOW: "below", ABOVE: "above"}[kind]
+        return Measurement(float(of.value[k]), float(of.u[k]), reading.subject, bound)
+
+    return mapped(problem, single)
+
+
+def noisy(problem: AccountProblem, samples: int, seed: int = 3) -> dict[Any, Series]:
+    """What the instruments of a problem would read again and again."""
+    rng = np.random.default_rng(seed)
+    found: dict[Any, Series] = {}
+
+    def draw(of: Measurement) -> Measurement:
+        found[of.subject] = Series(
+            of.value + of.u * rng.standard_normal(samples), np.full(samples, of.u)
+        )
+        return of
+
+    mapped(problem, draw)
+    return found
 
 
 def with_noise(

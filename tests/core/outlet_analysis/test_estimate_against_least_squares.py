@@ -28,6 +28,7 @@ def test_same_minimum_as_a_general_solver_on_random_accounts() -> None:
     assert of.compared > 80
     assert of.redundant > 70
     assert of.difference <= 1e-6
+    assert not of.unwarned
     assert of.gradient <= 1e-7
     # The forms say the same as the definitions.
     assert of.form <= 1e-12
@@ -102,3 +103,12 @@ def test_chi_square_is_distributed_as_it_should(seed: int) -> None:
     u = found.u_of(forms)
     known = u[0] > 0
     assert_allclose((error[:, known] / u[:, known]).std(axis=0), 1.0, atol=0.07)
+
+
+@pytest.mark.parametrize("seed", [223, 768, 5777])
+def test_what_rounding_leaves_of_a_variance_is_no_certainty(seed: int) -> None:
+    # Random accounts whose unknowns are told apart by nearly exact readings alone: of a variance
+    # that came out below zero a standard uncertainty of 0 was made.
+    rng = np.random.default_rng(seed)
+    problem, state = random_problem(rng)
+    assert estimate(with_noise(problem, state, rng, 1)).failed

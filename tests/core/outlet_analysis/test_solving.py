@@ -27,7 +27,7 @@ from tests.core.outlet_analysis.plant import (
     shift_problem,
     stream_of,
 )
-from tests.core.outlet_analysis.test_estimate_series import noisy_series
+from tests.core.outlet_analysis.random_accounts import noisy
 
 SHIFT = reactions_of({"shift": "CO + H2O <=> CO2 + H2"}, list(SHIFT_FEED))
 
@@ -153,7 +153,7 @@ def test_a_nearly_exact_reading_that_curves_brings_nothing_to_a_standstill() -> 
             )
         )
     problem = account(SHIFT, "CO", *streams)
-    series = noisy_series(problem, 200, seed=1)
+    series = noisy(problem, 200, seed=1)
     certain = ("feed", "analysis", "values", "N2")
     value = series[certain].value
     series[certain] = Series(value, 1e-7 * value)
