@@ -25,7 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
-from core.outlet_analysis.forms import Evaluation, Forms
+from core.outlet_analysis.forms import Evaluation, Forms, each
 
 IntArray: TypeAlias = NDArray[np.intp]
 
@@ -377,7 +377,7 @@ def _length(fit: Fit, found: Evaluation, of: _Step, damping: FloatArray) -> Floa
     No base falls to less than ``LEFT_OF_BASE`` of itself. As damping does not
     shorten what the stiff readings ask for, the whole step is shortened with it.
     """
-    change = of.step @ fit.forms.bases.T
+    change = each(fit.forms.bases, of.step)
     falling = change < -(1 - LEFT_OF_BASE) * found.base
     share = np.where(falling, found.base / np.where(falling, -change, 1.0), 1.0)
     length = np.where(falling, (1 - LEFT_OF_BASE) * share, 1.0).min(axis=-1, initial=1.0)
