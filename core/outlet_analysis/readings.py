@@ -190,19 +190,23 @@ class ReadingWriter:
         """Return the index of the base that is a further quantity of stream ``g``."""
         return self.base((g, quantity), self.further(g, quantity), quantity != VOLUME)
 
-    def sampled(self, g: int, weights: FloatArray) -> FloatArray:
+    def sampled(
+        self, g: int, weights: FloatArray, of_residuals: FloatArray | None = None
+    ) -> FloatArray:
         """Weights on the stream's flows of what the analyser saw of it.
 
         Only substances of the stream's own phase have a share in what is left
         of a removed one. A removed substance of residual r is r of the moles left, so each mole
-        of the others brings r/(1 - sum of residuals) of it.
+        of the others brings r/(1 - sum of residuals) of it. What is left weighs as
+        ``of_residuals``, by default as the rest: it is in the sample whatever its phase.
         """
         analysis = self.streams[g].analysis
         if analysis is None or not analysis.removed:
             return weights
         left = 1 - sum(removal.residual for removal in analysis.removed)
+        weigh = weights if of_residuals is None else of_residuals
         brought = sum(
-            weights[removal.substance] * removal.residual / left for removal in analysis.removed
+            weigh[removal.substance] * removal.residual / left for removal in analysis.removed
         )
         seen = weights + brought * self.own[g]
         for removal in analysis.removed:
@@ -211,7 +215,7 @@ class ReadingWriter:
 
     def sample_total(self, g: int, weights: FloatArray, name: str) -> int:
         """Return the index of the base that is the total of what was analysed."""
-        total = self.flows(g, self.sampled(g, weights * self.own[g]))
+        total = self.flows(g, self.sampled(g, weights * self.own[g], weights))
         return self.base((g, name, "sample"), total)
 
     def stream_total(self, g: int) -> int:
@@ -272,13 +276,13 @@ class ReadingWriter:
     def flow_reading(self, g: int, reading: FlowReading) -> None:
         """Enter a flow meter's reading."""
         stream = self.streams[g]
-        weights = self.masses if reading.kind == "mass" else self.ones
+        weights = every = self.masses if reading.kind == "mass" else self.ones
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
-            weights = self.component({reading.substance: 1.0}, weights)
+            weights = every = self.component({reading.substance: 1.0}, weights)
         if reading.as_analysed:
-            weights = self.sampled(g, weights)
+            weights = self.sampled(g, weights, every)
         of_volume = reading.kind == "volume"
         if of_volume and stream.phase == "liquid":
             if reading.substance is not None:
