@@ -31,7 +31,8 @@ def each(matrix: FloatArray, of: FloatArray) -> FloatArray:
     Sample by sample: in a product of two matrices rounding hangs on how many
     samples there are, and a fit that wanders can then end elsewhere.
     """
-    return np.asarray((matrix @ of[..., None])[..., 0])
+    product: FloatArray = (matrix @ of[..., None])[..., 0]
+    return product
 
 
 @dataclass(frozen=True, eq=False)
