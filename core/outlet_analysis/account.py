@@ -25,6 +25,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
 from core.outlet_analysis.analysis_sums import AnalysisSum, analysis_sums
 from core.outlet_analysis.budget import over_budget
+from core.outlet_analysis.forms import each
 from core.outlet_analysis.readings import (
     PRESSURE,
     SCALE,
@@ -135,7 +136,7 @@ class Account:
     def largest_flow(self, z: FloatArray) -> FloatArray:
         """Largest flow of a substance in a stream, shape (...), of unknowns (..., n)."""
         count = len(self.streams) * len(self.problem.reactions.substances)
-        return np.asarray(np.abs(z @ self.stream_map[:count].T).max(axis=-1))
+        return np.asarray(np.abs(each(self.stream_map[:count], z)).max(axis=-1))
 
 
 def listed(words: Sequence[str]) -> str:

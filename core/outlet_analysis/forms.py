@@ -25,6 +25,16 @@ CANCELLED = 1e-14
 """Part of its terms that rounding leaves of a sum."""
 
 
+def each(matrix: FloatArray, of: FloatArray) -> FloatArray:
+    """Return matrix (k, n) times the vector of each sample (N, n), shape (N, k).
+
+    Sample by sample: in a product of two matrices rounding hangs on how many
+    samples there are, and a fit that wanders can then end elsewhere.
+    """
+    product: FloatArray = (matrix @ of[..., None])[..., 0]
+    return product
+
+
 @dataclass(frozen=True, eq=False)
 class Evaluation:
     """What the forms give at ``z``; N samples, m readings, q bases.
@@ -99,13 +109,13 @@ class Forms:
 
     def at(self, z: FloatArray) -> Evaluation:
         """Evaluate at ``z``, shape (N, n)."""
-        numerator = z @ self.numerators.T
-        base = z @ self.bases.T
+        numerator = each(self.numerators, z)
+        base = each(self.bases, z)
         positive = base > 0
         inside: BoolArray = np.asarray(positive.all(axis=-1))
         if not inside.all():
             base = np.where(positive, base, 1.0)
-        product = self.constants * np.exp(np.log(base) @ self.exponents.T)
+        product = self.constants * np.exp(each(self.exponents, np.log(base)))
         return Evaluation(base, product, numerator * product, inside)
 
     def jacobian(self, found: Evaluation) -> FloatArray:

@@ -25,7 +25,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray
-from core.outlet_analysis.forms import Evaluation, Forms
+from core.outlet_analysis.forms import Evaluation, Forms, each
 
 IntArray: TypeAlias = NDArray[np.intp]
 
@@ -39,12 +39,16 @@ SMALL_MISS = 1e-7
 """How near an exact reading must be met, relative, before the last step squares what is left."""
 ROUNDING_STEP = 1e-13
 """A step that rounding alone can make, relative."""
+LEFT_OF_BASE = 0.1
+"""Share of a base that a step must leave of it."""
 SUFFICIENT = 0.2
 """Share of its first-order fall that the merit must fall by, or the step is damped."""
 ROUNDING = 1e-11
 LEAST_DAMPING = 1e-3
 MOST_DAMPING = 1e8
 ROUNDING_GAP = 1e-9
+ROUNDING_VARIANCE = 1e-6
+"""How far rounding may put a variance below zero, of what it would be with all others known."""
 SINGULAR = 1e13
 """Inflation of a variance beyond which double precision cannot tell unknowns apart."""
 
@@ -206,6 +210,36 @@ def _system(
 
 
 @dataclass(frozen=True, eq=False)
+class _Hard:
+    """How the merit counts the misses of the stiff readings, (N, c).
+
+    Up to ``slope`` times the compliance by half their squares over it, as the
+    weighted squares do, and from there on by ``slope``, so that what curves
+    in a nearly exact reading does not bring a good step to a standstill. Of
+    an exact reading that is the l1 merit. The slope is twice the multiplier:
+    a fit comes to rest where the square is counted.
+
+    Source: P. J. Huber, Ann. Math. Statist. 35 (1964) 73, for the function.
+    """
+
+    slope: FloatArray
+    compliance: FloatArray
+
+    def penalty(self, gap: FloatArray) -> FloatArray:
+        """Return what the misses ``gap`` count, shape (N,)."""
+        miss = np.abs(gap)
+        near = np.minimum(miss, self.slope * self.compliance)
+        squares = near * near / np.where(self.compliance > 0, 2 * self.compliance, 1.0)
+        return np.asarray((squares + self.slope * (miss - near)).sum(axis=-1))
+
+    def slopes(self, gap: FloatArray) -> FloatArray:
+        """Return the derivative of what the misses count, (N, c)."""
+        most = self.slope * self.compliance
+        share = np.minimum(np.abs(gap), most) / np.where(most > 0, most, 1.0)
+        return np.asarray(self.slope * np.where(most > 0, share, 1.0) * np.sign(gap))
+
+
+@dataclass(frozen=True, eq=False)
 class _Step:
     """A step from where the fit stands, and what is to be expected of it; N samples.
 
@@ -221,8 +255,8 @@ class _Step:
         Largest part of the step in natural sizes.
     gain : ndarray, shape (N,)
         First-order fall of the merit along the step.
-    hard : (ndarray, ndarray) or None
-        See :func:`_hard_weights`.
+    hard : _Hard or None
+        How the merit counts the stiff readings, if there are any.
     met : ndarray of bool, shape (N,)
         Exact readings are nearly met already.
     """
@@ -232,7 +266,7 @@ class _Step:
     decrement: FloatArray
     relative: FloatArray
     gain: FloatArray
-    hard: tuple[FloatArray, FloatArray] | None
+    hard: _Hard | None
     met: BoolArray
 
 
@@ -259,10 +293,12 @@ def _step(fit: Fit, found: Evaluation, sizes: FloatArray, damping: FloatArray) -
     gain = (g * step).sum(axis=-1)
     if not c:
         return _Step(step, sound, decrement, relative, gain, None, sound)
-    hard = _hard_weights(fit, solved[:, n:] / system.gauge)
+    hard = _hard(fit, solved[:, n:] / system.gauge)
     moved = (a @ step[:, :, None])[:, :, 0]
-    gain = gain + (hard[0] * np.abs(gap) + hard[1] * gap * moved).sum(axis=-1)
-    decrement = decrement + (hard[1] * moved * moved).sum(axis=-1)
+    gain = gain + (hard.slopes(gap) * moved).sum(axis=-1)
+    near = hard.compliance > 0
+    squares = np.where(near, moved * moved / np.where(near, hard.compliance, 1.0), 0.0)
+    decrement = decrement + squares.sum(axis=-1)
     reach = np.abs(a * sizes[:, None, :]).max(axis=-1)
     miss = np.where(fit.compliance == 0, np.abs(gap), 0.0)
     met: BoolArray = np.asarray((miss <= SMALL_MISS * reach).all(axis=-1))
@@ -298,8 +334,15 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         next_ = _step(fit, found, sizes, damping)
         trial = z + next_.step
         tried = fit.forms.at(trial)
+        gain = np.maximum(next_.gain, 0.0)
+        whole = tried.inside & (damping == 0)
+        if next_.hard is not None and not whole.all():
+            length = np.where(whole, 1.0, _length(fit, found, next_, damping))
+            trial = z + length[:, None] * next_.step
+            tried = fit.forms.at(trial)
+            gain *= length
         before, after = _merit(fit, found, next_.hard), _merit(fit, tried, next_.hard)
-        enough = before - SUFFICIENT * np.maximum(next_.gain, 0.0) + ROUNDING * (1 + before)
+        enough = before - SUFFICIENT * gain + ROUNDING * (1 + before)
         better: BoolArray = np.asarray(tried.inside & next_.sound & (after <= enough))
         plain = damping == 0
         settled = _settled(next_, previous, plain)
@@ -328,6 +371,19 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     return Solution(z_all, converged)
 
 
+def _length(fit: Fit, found: Evaluation, of: _Step, damping: FloatArray) -> FloatArray:
+    """Part to take of steps that are damped or lead outside, shape (N,).
+
+    No base falls to less than ``LEFT_OF_BASE`` of itself. As damping does not
+    shorten what the stiff readings ask for, the whole step is shortened with it.
+    """
+    change = each(fit.forms.bases, of.step)
+    falling = change < -(1 - LEFT_OF_BASE) * found.base
+    share = np.where(falling, found.base / np.where(falling, -change, 1.0), 1.0)
+    length = np.where(falling, (1 - LEFT_OF_BASE) * share, 1.0).min(axis=-1, initial=1.0)
+    return np.asarray(length / (1 + damping))
+
+
 def _settled(of: _Step, previous: FloatArray, plain: BoolArray) -> BoolArray:
     """Whether nothing is left to gain but what the step taken with the covariance brings.
 
@@ -336,34 +392,32 @@ def _settled(of: _Step, previous: FloatArray, plain: BoolArray) -> BoolArray:
     """
     known = plain & (previous > 0)
     rate = np.where(known, of.decrement / np.where(known, previous, 1.0), 1.0)
-    left = of.decrement * rate * rate
-    small = (of.decrement < SMALL_DECREMENT) & (left < NEGLIGIBLE_DECREMENT)
-    small |= of.decrement < VERY_SMALL_DECREMENT
+    left = np.abs(of.decrement) * rate * rate
+    # Below zero it is rounding alone, and as large as that.
+    decrement = np.abs(of.decrement)
+    small = (decrement < SMALL_DECREMENT) & (left < NEGLIGIBLE_DECREMENT)
+    small |= decrement < VERY_SMALL_DECREMENT
     return np.asarray((small & of.met) | (of.relative < ROUNDING_STEP))
 
 
-def _hard_weights(fit: Fit, multipliers: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Weights in the merit of the misses of exact readings, and of the squares of nearly exact.
+def _hard(fit: Fit, multipliers: FloatArray) -> _Hard:
+    """Return how the merit counts the stiff readings, of which missing ones count nothing.
 
-    Both of shape (N, c). Below what rounding leaves of a residual its square
-    says nothing.
+    Below what rounding leaves of a residual its square says nothing.
     """
-    exact = (fit.compliance == 0) & np.isfinite(multipliers)
-    penalty = np.where(exact, 2 * np.abs(np.where(exact, multipliers, 0.0)), 0.0)
+    there = np.isfinite(fit.compliance) & np.isfinite(multipliers)
+    slope = np.where(there, 2 * np.abs(np.where(there, multipliers, 0.0)), 0.0)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
-    if not near.any():
-        return penalty, np.zeros_like(penalty)
-    soft = fit.compliance + (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
-    return penalty, np.where(near, 1 / np.where(near, soft, 1.0), 0.0)
+    rounding = (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
+    return _Hard(slope, np.where(near, np.where(near, fit.compliance, 0.0) + rounding, 0.0))
 
 
-def _merit(fit: Fit, of: Evaluation, hard: tuple[FloatArray, FloatArray] | None) -> FloatArray:
+def _merit(fit: Fit, of: Evaluation, hard: _Hard | None) -> FloatArray:
     """Half the weighted squares, and the misses of the stiff readings, shape (N,)."""
     residual = fit.measured - of.value
     total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
     if hard is not None:
-        gap = np.abs(residual[:, fit.stiff])
-        total = total + ((hard[0] + 0.5 * hard[1] * gap) * gap).sum(axis=-1)
+        total = total + hard.penalty(residual[:, fit.stiff])
     return total
 
 
@@ -450,8 +504,11 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     rest = _rest(fit, z, natural)
     slopes, covariance, inverse = rest.slopes, rest.covariance, rest.inverse
     n, c = z.shape[1], len(fit.stiff)
-    inflation = inverse[:, :n, :n].diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
-    inflation = np.where(np.isnan(inflation), np.inf, inflation)
+    own = inverse[:, :n, :n].diagonal(axis1=1, axis2=2)
+    inflation = own.max(axis=-1, initial=0.0)
+    # A variance below zero is what rounding leaves of one that cannot be told.
+    lost = np.isnan(inflation) | (own.min(axis=-1, initial=0.0) < -ROUNDING_VARIANCE)
+    inflation = np.where(lost, np.inf, inflation)
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)
     step = rest.size * rest.step[:, :n]

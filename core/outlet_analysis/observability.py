@@ -147,15 +147,27 @@ def without_columns(directions: FloatArray, columns: IntArray) -> FloatArray:
 
 
 def _removed_from_feed(account: Account) -> list[tuple[int, int]]:
-    """Feed stream and substance of everything that was fully removed and may be there."""
+    """Feed stream and substance of everything that was fully removed and may be there.
+
+    What another analysis of the same stream has read is no longer in question.
+    """
     found = [
         (g, removal.substance)
         for g, stream in enumerate(account.problem.feed)
         for analysis in stream.analyses
         for removal in analysis.removed
-        if removal.residual == 0 and removal.substance in fed_in(stream)
+        if removal.residual == 0
+        and removal.substance in fed_in(stream)
+        and not any(_reads(other, removal.substance) for other in stream.analyses)
     ]
     return list(dict.fromkeys(found))
+
+
+def _reads(analysis: Analysis, substance: int) -> bool:
+    """Whether a value of an analysis counts a substance, or its balance is that."""
+    return substance == analysis.balance or any(
+        substance in component.weights for component in analysis.components
+    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -324,12 +336,14 @@ class _Further:
                     words = f"the {self.flow_words['amount']} of {self.names[i]} in {where}"
                     self.note(words, (g, "form", "flows"))
         elif g < self.feeds:
-            for stream_, i in _removed_from_feed(self.account):
+            removed = _removed_from_feed(self.account)
+            for stream_, i in removed:
                 if stream_ == g and i in carried:
                     self._flow(g, FlowReading("amount", BLANK, substance=i))
                     self.note(
                         f"the {self.flow_words['amount']} of {self.names[i]}, as a feed stream of"
-                        " its own"
+                        " its own",
+                        *((h, self.names[i], "alone") for h, j in removed if j == i),
                     )
         self._volume(g, where)
 
@@ -356,6 +370,7 @@ class _Further:
                     self.note(
                         f"the {share} of {self.names[i]} in {place} {where}",
                         (g, "form", "analysis"),
+                        (g, self.names[i], "in the stream"),
                     )
         if any(reading.substance is None for reading in stream.flows):
             return
@@ -455,5 +470,10 @@ def _settling(
             break
         chosen_rows.append(best)
         if settles(chosen_rows):
-            return [tuple(candidates[k].words for k in chosen_rows)]
+            # What was taken first may be told by what came later.
+            for k in tuple(chosen_rows):
+                fewer = [j for j in chosen_rows if j != k]
+                chosen_rows = fewer if settles(fewer) else chosen_rows
+            # A stream of its own serves all streams from whose samples it is removed.
+            return [tuple(dict.fromkeys(candidates[k].words for k in chosen_rows))]
     return found

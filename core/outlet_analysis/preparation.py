@@ -19,7 +19,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.budget import NEARLY_EXACT
-from core.outlet_analysis.forms import Forms
+from core.outlet_analysis.forms import Forms, each
 from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
 from core.outlet_analysis.readings import ABOVE, BELOW, MOLAR_DENSITY, VOLUME
 
@@ -142,6 +142,9 @@ def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
     flow = np.where(metered, np.abs(measured[:, :-1]) / per_mole, 0.0).max(axis=1, initial=0.0)
     flow = np.where(flow > 0, flow, 1.0)
     share = account.of_flow + 0.05 * account.of_extent
+    # What leaves is shared out, so that the last outlet stream is left its part.
+    feeds, outlets = len(account.problem.feed), len(account.problem.outlet)
+    share[[of.kind == "flow" and of.stream >= feeds for of in account.unknowns]] /= outlets or 1
     nominal: FloatArray = flow[:, None] * (share / max(1, np.count_nonzero(account.of_flow)))
     for column in np.flatnonzero(share == 0).tolist():
         unknown = account.unknowns[column]
@@ -179,10 +182,10 @@ def linearised(block: Block) -> tuple[FloatArray, FloatArray, FloatArray]:
     pressure gauge or the sum of the peaks states beforehand is put in.
     """
     readings, forms, nominal = block.account.readings, block.forms, block.nominal
-    base = nominal @ forms.bases.T
+    base = each(forms.bases, nominal)
     base = np.where(base > 0, base, 1.0)
     known = forms.exponents * readings.known
-    factor = forms.constants * np.exp(np.log(base) @ known.T)
+    factor = forms.constants * np.exp(each(known, np.log(base)))
     slopes = factor[:, :, None] * forms.numerators
     right, u = np.array(block.measured), np.array(block.u)
     ratios = np.flatnonzero(readings.cleared >= 0)
@@ -278,7 +281,7 @@ def _inside(block: Block, start: FloatArray) -> FloatArray:
     bases = block.forms.bases
     if not len(bases):
         return start
-    base, usual = start @ bases.T, block.nominal @ bases.T
+    base, usual = each(bases, start), each(bases, block.nominal)
     least = 0.05 * usual
     low = (base < least) & (usual > 0)
     if not low.any():

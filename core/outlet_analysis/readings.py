@@ -215,18 +215,26 @@ class ReadingWriter:
         """Return the index of the base that is a further quantity of stream ``g``."""
         return self.base((g, quantity), self.further(g, quantity), quantity != VOLUME)
 
-    def sampled(self, g: int, weights: FloatArray, analysis: Analysis) -> FloatArray:
+    def sampled(
+        self,
+        g: int,
+        weights: FloatArray,
+        analysis: Analysis,
+        of_residuals: FloatArray | None = None,
+    ) -> FloatArray:
         """Weights on the stream's flows of what the analyser saw of it.
 
         Only substances of the stream's own phase have a share in what is left
         of a removed one. A removed substance of residual r is r of the moles left, so each mole
-        of the others brings r/(1 - sum of residuals) of it.
+        of the others brings r/(1 - sum of residuals) of it. What is left weighs as
+        ``of_residuals``, by default as the rest: it is in the sample whatever its phase.
         """
         if not analysis.removed:
             return weights
         left = 1 - sum(removal.residual for removal in analysis.removed)
+        weigh = weights if of_residuals is None else of_residuals
         brought = sum(
-            weights[removal.substance] * removal.residual / left for removal in analysis.removed
+            weigh[removal.substance] * removal.residual / left for removal in analysis.removed
         )
         seen = weights + brought * self.own[g]
         for removal in analysis.removed:
@@ -235,7 +243,7 @@ class ReadingWriter:
 
     def sample_total(self, g: int, weights: FloatArray, name: str, analysis: Analysis) -> int:
         """Return the index of the base that is the total of what was analysed."""
-        total = self.flows(g, self.sampled(g, weights * self.own[g], analysis))
+        total = self.flows(g, self.sampled(g, weights * self.own[g], analysis, weights))
         return self.base((g, name, "sample", self.which(g, analysis)), total)
 
     def which(self, g: int, analysis: Analysis) -> int:
@@ -309,14 +317,14 @@ class ReadingWriter:
                 "found a design density of a meter on a liquid; only the density of a gas follows"
                 " from its composition, temperature and pressure. State the flow corrected",
             )
-        weights = self.masses if reading.kind == "mass" else self.ones
+        weights = every = self.masses if reading.kind == "mass" else self.ones
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
-            weights = self.component({reading.substance: 1.0}, weights)
+            weights = every = self.component({reading.substance: 1.0}, weights)
         analysis = self.metered_as(g, reading)
         if analysis is not None:
-            weights = self.sampled(g, weights, analysis)
+            weights = self.sampled(g, weights, analysis, every)
         of_volume = reading.kind == "volume"
         if of_volume and stream.phase == "liquid":
             if reading.substance is not None:
@@ -401,12 +409,15 @@ class ReadingWriter:
                 "found a volumetric flow of a gas at a meter; it needs the temperature and"
                 " pressure of the meter",
             )
-        moles = self.own[g]
+        moles, every = self.own[g], self.ones
         if reading.substance is not None:
-            moles = self.component({reading.substance: 1.0}, self.ones)
+            moles = every = self.component({reading.substance: 1.0}, self.ones)
         mass = moles * self.masses
         if analysis is not None:
-            moles, mass = (self.sampled(g, of, analysis) for of in (moles, mass))
+            moles, mass = (
+                self.sampled(g, of, analysis, residuals)
+                for of, residuals in ((moles, every), (mass, every * self.masses))
+            )
         of_series = self.series.get(reading.measurement.subject)
         ratio: float | FloatArray = design.ratio
         if of_series is not None and of_series.density_ratio is not None:

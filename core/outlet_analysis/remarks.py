@@ -306,9 +306,8 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
             continue
         weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)
-        seen = account.writer.sampled(
-            of.stream, weights * account.writer.own[of.stream], of.analysis
-        )
+        own = account.writer.own[of.stream]
+        seen = account.writer.sampled(of.stream, weights * own, of.analysis, weights)
         whole = np.nan_to_num(flows) @ seen
         marks &= whole > 0
         share = flows[:, unread] * weights[unread] / np.where(marks, whole, 1.0)[:, None]
