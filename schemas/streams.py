@@ -13,7 +13,14 @@ from marshmallow import fields
 from core.constants import GAS_CONSTANT
 from core.errors import Note, Subject
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Analysis, FlowKind, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    FlowKind,
+    FlowReading,
+    Instrument,
+    Measurement,
+    MeteredStream,
+)
 from core.streams.stream import StreamPhase
 from schemas.analyses import AnalysisReader, AnalysisSchema, analysed_substances
 from schemas.edge import Json, RequestReader
@@ -381,15 +388,25 @@ class StreamReader:
             meter = self._meter(document, pointer, subject)
             if meter is None:
                 return
-            molar_volume, share = meter
-            # Whatever is wrong with the meter's conditions is wrong with this reading alone.
-            reading = replace(reading, u=math.hypot(reading.u, share * reading.value))
+            molar_volume, share, shared = meter
+            # Whatever is wrong with the meter's conditions is wrong with this reading.
+            parts = dict(reading.shared)
+            for instrument, part in shared:
+                parts[instrument] = parts.get(instrument, 0.0) + part * reading.value
+            own = math.hypot(reading.u, share * reading.value)
+            reading = replace(reading, u=own, shared=tuple(parts.items()))
         yield FlowReading(
             kinds[found.dimension], reading, as_analysed=as_analysed, molar_volume=molar_volume
         )
 
-    def _meter(self, document: Json, pointer: str, subject: Subject) -> tuple[float, float] | None:
-        """Return the molar volume at a gas meter, m3/mol, and its relative uncertainty."""
+    def _meter(
+        self, document: Json, pointer: str, subject: Subject
+    ) -> tuple[float, float, list[tuple[Instrument, float]]] | None:
+        """Return the molar volume at a gas meter, m3/mol, and its relative uncertainty.
+
+        That is the own part of it, and how much of the reading it shares with what
+        other instruments read: too hot a meter makes too little of the flow.
+        """
         place = child(pointer, "meter")
         if "meter" not in document:
             self.reader.fault(
@@ -407,7 +424,9 @@ class StreamReader:
         z: float = document["meter"]["compressibility"]
         molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
         share = math.hypot(temperature.u / temperature.value, pressure.u / pressure.value)
-        return molar_volume, share
+        shared = [(of, -part / temperature.value) for of, part in temperature.shared]
+        shared += [(of, part / pressure.value) for of, part in pressure.shared]
+        return molar_volume, share, shared
 
     def density(
         self, document: Json, pointer: str, subject: Subject, phase: StreamPhase

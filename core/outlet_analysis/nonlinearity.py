@@ -1,0 +1,109 @@
+"""Whether linear propagation will do: the terms of second order of a ratio, written out.
+
+With z the unknowns, C their covariance, r = n.z/d.z a ratio and g its slope
+against the readings, the ratio of readings in error by e is to second order
+
+    r + g.e + 1/2 z'M z + (what residuals add),  M = r'' - sum_i g_i h_i''
+
+The mean of the second term is its bias, 1/2 tr(M C) (M. J. Box, J. R. Stat.
+Soc. B 33 (1971) 171, for the estimates of nonlinear least squares; GUM, JCGM
+100:2008, 5.1.2 note, for a function of readings), its variance for normal
+errors 1/2 tr(M C M C); the third, uncorrelated with it and of mean zero, comes
+from the change of the slopes that residuals are weighed with.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from core.arrays import FloatArray
+from core.outlet_analysis.gauss_newton import Curvature, Fit
+
+BIAS = 0.1
+"""Bias of second order, over u, from which on linear propagation is doubted."""
+SPREAD = 0.2
+"""Standard deviation of the terms of second order, over u, likewise: they add 2 % to u."""
+
+
+@dataclass(frozen=True, eq=False)
+class Local:
+    """A single sample's fit and what it looks like at its solution."""
+
+    fit: Fit
+    curvature: Curvature
+
+
+def second_order(
+    local: Local, numerators: FloatArray, denominators: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Bias and standard deviation of the terms of second order, both of shape (k,).
+
+    Parameters
+    ----------
+    local : Local
+    numerators, denominators : ndarray, shape (k, n)
+        Of ratios whose denominators are not zero.
+    """
+    fit, at = local.fit, local.curvature
+    rest = at.rest
+    assert rest is not None
+    z, covariance = at.z[0], at.covariance[0]
+    n = len(z)
+    forms, found = fit.forms, fit.forms.at(at.z)
+    below = denominators @ z
+    slope = (numerators - ((numerators @ z) / below)[:, None] * denominators) / below[:, None]
+    moved = slope @ covariance
+
+    # What each reading moves of the ratios; only readings that are not linear bend.
+    weighed = rest.slopes[0] * fit.weight[0, :, None]
+    gain = moved @ weighed.T
+    stiff = fit.stiff
+    variance = fit.compliance[0]
+    if len(stiff):
+        border = rest.inverse[0, :n, n:] * rest.size[0, :, None] / rest.gauge[0]
+        of_equations = slope @ border
+        if fit.mixture is not None:
+            of_equations = of_equations @ fit.mixture.forward[0]
+        gain[:, stiff] = of_equations
+    bent = np.flatnonzero((forms.exponents != 0).any(axis=1))
+    exponents, base = forms.exponents[bent], found.base[0]
+    counted = forms.numerators[bent]
+    against = (exponents / base) @ forms.bases
+    product, value = found.product[0, bent], found.value[0, bent]
+
+    m = -(slope[:, :, None] * denominators[:, None, :]) / below[:, None, None]
+    m -= (counted.T * (gain[:, bent] * product)[:, None, :]) @ against
+    m += m.transpose(0, 2, 1)
+    of_value = gain[:, bent] * value
+    m -= (against.T * of_value[:, None, :]) @ against
+    per_base = exponents / base**2
+    m += (forms.bases.T * (of_value @ per_base)[:, None, :]) @ forms.bases
+    turned = m @ covariance
+    bias = 0.5 * turned.trace(axis1=1, axis2=2)
+    square = 0.5 * (turned * turned.transpose(0, 2, 1)).sum(axis=(1, 2))
+
+    # h'' times the direction that each ratio moves along, shape (k, m, n).
+    bends = np.zeros((len(slope), len(forms.numerators), n))
+    along_counted, along_against = moved @ counted.T, moved @ against.T
+    bends[:, bent] = (product * along_against)[:, :, None] * counted
+    bends[:, bent] += (product * along_counted + value * along_against)[:, :, None] * against
+    of_bases = (moved @ forms.bases.T)[:, None, :] * per_base
+    bends[:, bent] -= value[:, None] * (of_bases @ forms.bases)
+    weight, slopes = fit.weight[0], rest.slopes[0]
+    if len(stiff):
+        sound = np.isfinite(variance) & (variance > 0)
+        of_stiff, slopes_of_stiff = bends[:, stiff], slopes[stiff]
+        if fit.mixture is not None:
+            of_stiff = fit.mixture.forward[0] @ of_stiff
+            slopes_of_stiff = fit.mixture.forward[0] @ slopes_of_stiff
+        bends = np.concatenate([bends, of_stiff], axis=1)
+        slopes = np.concatenate([slopes, slopes_of_stiff])
+        weight = np.concatenate([weight, np.where(sound, 1 / np.where(sound, variance, 1.0), 0.0)])
+    bends *= weight[:, None] ** 0.5
+    own = ((bends @ covariance) * bends).sum(axis=(1, 2))
+    common = (slopes.T * weight**0.5) @ bends
+    turned = covariance @ common
+    square += own - (turned @ covariance * common).sum(axis=(1, 2))
+    return bias, np.sqrt(np.maximum(square, 0.0))
