@@ -17,10 +17,11 @@ MOST_WORK = 1.5e8
 """Multiplications of one step of one fit, about."""
 WORK_OF_REFITS = 4e8
 """What all the refits together may take in which suspects are looked for, a step of each."""
-WORK_OF_DRAWS = 4e9
+WORK_OF_DRAWS = 2.5e9
 """What all the draws together may take whose accounts are fitted, a step of each."""
-LEAST_WORK = 5e3
-"""Multiplications that what else is done for a step of a small account takes the time of."""
+LEAST_WORK, WORK_OF_SLOPES, WORK_TOGETHER = 2e3, 50.0, 0.25
+"""Of a step in a long series: what it takes at least, what a slope takes, and what share of its
+time a multiplication takes that is one of many together."""
 WORK_OF_SETTLING = 2e8
 """What may be spent on the search for further readings that would settle an account."""
 NEARLY_EXACT = 1e-4
@@ -37,9 +38,16 @@ def most_refits(readings: int, unknowns: int, equations: int) -> int:
     return max(1, int(WORK_OF_REFITS / work(readings, unknowns, equations)))
 
 
-def most_draws(readings: Readings, unknowns: int) -> int:
-    """How many draws of an account's readings may be fitted."""
-    each = work(len(readings.subjects), unknowns, _equations(readings)) + LEAST_WORK
+def most_draws(readings: Readings, unknowns: int, substances: int) -> int:
+    """How many draws of an account's readings may be fitted, for it and for its closures.
+
+    The closures' account has the flows of the outlet among its unknowns.
+    """
+    m, equations = len(readings.subjects), _equations(readings)
+    each = sum(
+        LEAST_WORK + WORK_OF_SLOPES * m * n + WORK_TOGETHER * work(m, n, equations)
+        for n in (unknowns, unknowns + substances)
+    )
     return int(WORK_OF_DRAWS / each)
 
 

@@ -222,7 +222,8 @@ def _check(account: Account, sampling: Sampling, coverage: float) -> None:
             coverage=f"{coverage:g}",
             needed=needed,
         )
-    most = most_draws(account.readings, len(account.unknowns))
+    substances = len(account.problem.reactions.substances)
+    most = most_draws(account.readings, len(account.unknowns), substances)
     if sampling.draws > most:
         raise refuse(
             "compute-budget",

@@ -23,8 +23,9 @@ from core.outlet_analysis.gauss_newton import Curvature, Fit
 
 BIAS = 0.1
 """Bias of second order, over u, from which on linear propagation is doubted."""
-SPREAD = 0.2
-"""Standard deviation of the terms of second order, over u, likewise: they add 2 % to u."""
+SPREAD = 0.1
+"""Standard deviation of the terms of second order, over u, likewise: with those of third order,
+which are as large, they add up to 2 % to u."""
 
 
 @dataclass(frozen=True, eq=False)
