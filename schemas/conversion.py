@@ -254,16 +254,9 @@ def _read_correlations(
     """Return the correlations between readings of the streams, found by their pointers."""
     if not stated:
         return ()
-    subjects = [
-        subject
-        for stream in streams
-        for subject in (
-            *named(stream),
-            (*stream.subject, "temperature"),
-            (*stream.subject, "pressure"),
-        )
-        if subject in reader.places
-    ]
+    subjects = [subject for stream in streams for subject in named(stream)]
+    conditions = [of for stream in streams for of in (stream.temperature, stream.pressure)]
+    subjects += [of.subject for of in conditions if of is not None]
     places = {reader.places[subject][0]: subject for subject in subjects}
     found = []
     for k, said in enumerate(stated):
