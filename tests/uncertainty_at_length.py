@@ -157,12 +157,17 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__.splitlines()[0])
     parser.add_argument("--trials", type=int, default=10_000)
     parser.add_argument("--draws", type=int, default=1000)
+    parser.add_argument("--accounts", type=int, default=40)
     parser.add_argument("--seed", type=int, default=1)
     asked = parser.parse_args()
-    gaps, told = silent_accounts(100, draws=100_000, seed=asked.seed)
+    gaps, told = silent_accounts(asked.accounts, draws=100_000, seed=asked.seed)
     worst = max(abs(of_u) for of_u, _ in gaps)
-    print(f"linear u off by at most {100 * worst:.2f} % on 100 accounts, doubted on {told} others",
-          "met" if worst <= 0.02 else "MISSED", flush=True)  # fmt: skip
+    # Chance alone moves u of 100,000 draws by up to 0.9 %, four of its standard deviations.
+    print(
+        f"linear u off by {100 * worst:.2f} % at most, on {len(gaps)} accounts;"
+        f" doubted on {told} others: {'met' if worst <= 0.029 else 'MISSED'}",
+        flush=True,
+    )
     for conversion in (0.98, 0.99, 0.995, 0.999):
         hits = covered(
             cracker(conversion),
@@ -172,9 +177,11 @@ def main() -> None:
             seed=asked.seed,
         )
         share = hits / asked.trials
-        met = 0.94 <= share <= 0.96
-        print(f"X = {conversion}: {100 * share:.2f} % of {asked.trials} intervals cover",
-              "met" if met else "MISSED", flush=True)  # fmt: skip
+        print(
+            f"X = {conversion}: {100 * share:.2f} % of {asked.trials} intervals cover it:"
+            f" {'met' if 0.94 <= share <= 0.96 else 'MISSED'}",
+            flush=True,
+        )
 
 
 if __name__ == "__main__":

@@ -186,6 +186,7 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
     else:
         of = loose.correlated
         own = of.information.diagonal(axis1=1, axis2=2)
+        testable &= own > 0
         standardised = _over_root(of.multiplier, own, testable)
         moved = testable & (of.residual_variance > NO_REDUNDANCY * stated.u**2)
         adjustment = _over_root(residual, of.residual_variance, moved)

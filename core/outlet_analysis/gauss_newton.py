@@ -612,6 +612,6 @@ def _correlated(
     # A reading that tells nothing of the account may tell the errors of others.
     control[:, stiff] = np.where(there, own * np.maximum(length, square), 0.0)
     control[:, stiff] *= square > 0
-    freedom = (compliance * corner.diagonal(axis1=1, axis2=2)).sum(axis=1)
+    freedom = np.clip(compliance * corner.diagonal(axis1=1, axis2=2), 0.0, 1.0).sum(axis=1)
     chi_square = (compliance * multiplier_of_equation**2).sum(axis=1)
     return CorrelatedTests(information, multiplier, residual_variance, freedom, chi_square)

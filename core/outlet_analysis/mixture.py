@@ -105,7 +105,7 @@ def mixture_of(
 
     The variance is 0 of an exact combination and infinite where a reading is missing.
     """
-    alike = len(coefficients) == 1 and bool((there == there[0]).all())
+    alike = len(coefficients) == 1 and bool((there == there[:1]).all())
     some = there[:1] if alike else there
     rows = np.flatnonzero(linked)
     k, n, c = len(rows), len(some), len(linked)
