@@ -17,7 +17,7 @@ from core.outlet_analysis.analysis_sums import percent
 from core.outlet_analysis.closure import Closures, element_closures
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.monte_carlo import MEAN_DIFFERS, Draws
-from core.outlet_analysis.nonlinearity import BIAS, SPREAD, second_order
+from core.outlet_analysis.nonlinearity import BIAS, SPREAD, may_be_curved, second_order
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
 from core.reactions.reaction_set import ReactionSet
@@ -183,8 +183,7 @@ def conversion_results(
     )
     notes += _null_notes(found, results)
     if draws is None:
-        names = _ratio_names(reactions, products)
-        notes += _doubtful(found, linear, numerators, denominators, nowhere, names)
+        notes += _doubtful(found, linear, numerators, denominators, nowhere, products)
     else:
         notes += draws.notes
         notes += _mean_note(draws, numerators[0], denominators[0], conversion)
@@ -220,7 +219,7 @@ def _doubtful(
     numerators: FloatArray,
     denominators: FloatArray,
     nowhere: BoolArray,
-    names: list[str],
+    products: list[int],
 ) -> list[Note]:
     """Return the note that linear propagation is in doubt, of a single sample."""
     local = found.local
@@ -228,13 +227,14 @@ def _doubtful(
         return []
     there = np.concatenate([[False], nowhere, nowhere])
     there = np.flatnonzero(np.isfinite(linear.value) & (linear.u > 0) & ~there)
-    if not len(there):
+    if not len(there) or not may_be_curved(local, denominators[there]):
         return []
     bias, spread = second_order(local, numerators[there], denominators[there])
     u = linear.u[there]
     doubt = (np.abs(bias) > BIAS * u) | (spread > SPREAD * u)
     if not doubt.any():
         return []
+    names = _ratio_names(found.account.problem.reactions, products)
     worst = float((np.maximum(np.abs(bias), spread) / u).max())
     return [
         Note(

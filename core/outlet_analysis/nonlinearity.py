@@ -36,6 +36,35 @@ class Local:
     curvature: Curvature
 
 
+def may_be_curved(local: Local, denominators: FloatArray) -> bool:
+    """Whether terms of second order can come near their limits: a bound that costs little.
+
+    With s the relative uncertainty of what a reading is counted against, no
+    term of its h'' is more than t = u_h s + 2 |h| s^2 in size; all together
+    shift a ratio by no more than u sqrt(sum of t^2/u^2), by Cauchy and Schwarz.
+    """
+    fit, at = local.fit, local.curvature
+    if fit.mixture is not None:
+        return True
+    forms, z, covariance = fit.forms, at.z[0], at.covariance[0]
+    below = denominators @ z
+    relative = ((denominators @ covariance) * denominators).sum(axis=1) / (below * below)
+    total = 0.0
+    if len(forms.bases):
+        base = forms.bases @ z
+        square = ((forms.bases @ covariance) * forms.bases).sum(axis=1)
+        s = np.abs(forms.exponents) @ (np.sqrt(np.maximum(square, 0.0)) / base)
+        value = fit.measured[0] - at.residual[0]
+        bend = s * (np.sqrt(at.variance[0]) + 2 * np.abs(value) * s)
+        total = float((fit.weight[0] * bend * bend).sum())
+        for row, variance in zip(fit.stiff.tolist(), fit.compliance[0].tolist(), strict=True):
+            if bend[row] and variance == 0:
+                return True
+            total += float(bend[row]) ** 2 / variance if variance else 0.0
+    bound = total**0.5 + float(relative.max()) ** 0.5
+    return not (bound <= BIAS and 2 * bound**2 + 4 * total <= SPREAD**2)
+
+
 def second_order(
     local: Local, numerators: FloatArray, denominators: FloatArray
 ) -> tuple[FloatArray, FloatArray]:

@@ -15,6 +15,7 @@ from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import ConversionResults, conversion_results
 from core.outlet_analysis.correlations import Correlation
 from core.outlet_analysis.monte_carlo import Draws, Sampling, drawn_blocks, monte_carlo
+from core.outlet_analysis.nonlinearity import BIAS, SPREAD, may_be_curved, second_order
 from core.outlet_analysis.reconciliation import estimate
 from tests.core.outlet_analysis.plant import (
     account,
@@ -23,7 +24,8 @@ from tests.core.outlet_analysis.plant import (
     shift_problem,
     stream_of,
 )
-from tests.uncertainty_at_length import covered, cracker, silent_accounts
+from tests.core.outlet_analysis.random_accounts import predicted, random_problem
+from tests.uncertainty_at_length import covered, cracker, read_as, silent_accounts
 
 
 def drawn(problem: AccountProblem, draws: int = 10_000, seed: int = 7) -> ConversionResults:
@@ -106,6 +108,33 @@ def test_where_no_doubt_is_told_linear_propagation_holds_within_2_percent() -> N
     # And the bias of second order is what the mean of the draws is off by.
     assert max(abs(of_mean) for _, of_mean in gaps) < 0.02 + 4 / draws**0.5
     assert told > 0
+
+
+def test_what_is_passed_over_by_the_bound_is_straight() -> None:
+    rng = np.random.default_rng(8)
+    passed = looked_at = 0
+    while passed < 40 or looked_at < 20:
+        problem, state = random_problem(rng)
+        truth = predicted(problem, state)
+        size = rng.choice([0.002, 0.01, 0.05])
+        u = {s: abs(v or 0.1) * rng.uniform(0.3, 1.0) * size for s, v in truth.items()}
+        read = {s: v + u[s] * rng.standard_normal() for s, v in truth.items()}
+        try:
+            found = estimate(read_as(problem, read, u))
+        except Refused:
+            continue
+        fed = found.account.feed_map[problem.key]
+        made = fed - found.account.outlet_map[problem.key]
+        x = conversion_results(found, closures=False).conversion
+        if not np.isfinite(x.value):
+            continue
+        if may_be_curved(found.local, fed[None]):
+            looked_at += 1
+            continue
+        passed += 1
+        bias, spread = second_order(found.local, made[None], fed[None])
+        assert abs(bias[0]) <= BIAS * x.u
+        assert spread[0] <= SPREAD * x.u
 
 
 def test_doubt_is_told_where_the_account_is_curved_over_its_uncertainties() -> None:
