@@ -31,8 +31,9 @@ NOTES: dict[str, Entry] = {
     ),
     "linear-propagation-doubtful": Entry(
         "Linear propagation is in doubt",
-        "The account is curved over the uncertainties of its readings: terms of second order shift"
-        " a result by more than a tenth of u, or widen it. Ask for the method 'monte-carlo'.",
+        "The account is curved over the uncertainties of its readings, so that terms of second"
+        " order shift or widen a result by more than a tenth of u; or its uncertainty rests on"
+        " non-detects, which are not distributed normally. Ask for the method 'monte-carlo'.",
     ),
     "draws-left-out": Entry(
         "Draws left out",

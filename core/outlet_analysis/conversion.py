@@ -10,15 +10,23 @@ from typing import Literal
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Amount, Fact, Note, refuse
 from core.outlet_analysis.account import Account, listed
 from core.outlet_analysis.analysis_sums import percent
 from core.outlet_analysis.closure import Closures, element_closures
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.monte_carlo import MEAN_DIFFERS, Draws
-from core.outlet_analysis.nonlinearity import BIAS, SPREAD, may_be_curved, second_order
+from core.outlet_analysis.nonlinearity import (
+    BIAS,
+    RECTANGULAR,
+    SPREAD,
+    may_be_curved,
+    rectangular_share,
+    second_order,
+)
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
+from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import counting
 from core.reactions.reaction_set import ReactionSet
 
@@ -203,14 +211,15 @@ def flows_of(found: Estimate, forms: FloatArray, draws: Draws | None) -> Uncerta
     return draws.forms(found.z, forms)
 
 
-def _ratio_names(reactions: ReactionSet, products: list[int]) -> list[str]:
-    """Names of the ratios in the order in which they are computed."""
-    made = [reactions.names[i] for i in products]
-    return [
+def _names(found: Estimate, products: list[int], which: IntArray) -> str:
+    """Name ratios by the order in which they are computed."""
+    made = [found.account.problem.reactions.names[i] for i in products]
+    names = [
         "the conversion",
         *(f"the yield of {name}" for name in made),
         *(f"the selectivity of {name}" for name in made),
     ]
+    return listed([names[k] for k in which.tolist()])
 
 
 def _doubtful(
@@ -227,29 +236,47 @@ def _doubtful(
         return []
     there = np.concatenate([[False], nowhere, nowhere])
     there = np.flatnonzero(np.isfinite(linear.value) & (linear.u > 0) & ~there)
-    if not len(there) or not may_be_curved(local, denominators[there]):
+    if not len(there):
         return []
-    bias, spread = second_order(local, numerators[there], denominators[there])
-    u = linear.u[there]
-    doubt = (np.abs(bias) > BIAS * u) | (spread > SPREAD * u)
-    if not doubt.any():
-        return []
-    names = _ratio_names(found.account.problem.reactions, products)
-    worst = float((np.maximum(np.abs(bias), spread) / u).max())
-    return [
-        Note(
-            "linear-propagation-doubtful",
-            "linear propagation is in doubt for {results}: what is curved in the account shifts or"
-            " widens them by up to {share} of u; ask for the uncertainty by Monte Carlo"
-            " (method 'monte-carlo')",
-            "warning",
-            ("uncertainty",),
-            {
-                "results": listed([names[k] for k in there[doubt].tolist()]),
-                "share": percent(worst, 2),
-            },
-        )
-    ]
+    notes = []
+    if may_be_curved(local, denominators[there]):
+        bias, spread = second_order(local, numerators[there], denominators[there])
+        u = linear.u[there]
+        doubt = (np.abs(bias) > BIAS * u) | (spread > SPREAD * u)
+        if doubt.any():
+            worst = float((np.maximum(np.abs(bias), spread) / u).max())
+            notes.append(
+                _doubt(
+                    "linear propagation is in doubt for {results}: what is curved in the account"
+                    " shifts or widens them by up to {share} of u",
+                    _names(found, products, there[doubt]),
+                    worst,
+                )
+            )
+    below = found.account.readings.bound[0] == BELOW
+    if below.any():
+        share = rectangular_share(local, below, numerators[there], denominators[there])
+        doubt = share > RECTANGULAR
+        if doubt.any():
+            notes.append(
+                _doubt(
+                    "the intervals are in doubt for {results}: non-detects bring up to {share} of"
+                    " the variance, and what lies below a limit is not distributed normally",
+                    _names(found, products, there[doubt]),
+                    float(share.max()),
+                )
+            )
+    return notes
+
+
+def _doubt(detail: str, results: str, share: float) -> Note:
+    return Note(
+        "linear-propagation-doubtful",
+        detail + "; ask for the uncertainty by Monte Carlo (method 'monte-carlo')",
+        "warning",
+        ("uncertainty",),
+        {"results": results, "share": percent(share, 2)},
+    )
 
 
 def _mean_note(
