@@ -30,7 +30,7 @@ which are as large, they add up to 2 % to u."""
 
 RECTANGULAR = 0.8
 """Share of a variance that non-detects bring from which on an interval that takes it for normal
-is 5 % too wide."""
+is 8 % too wide."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,7 +100,7 @@ def may_be_curved(local: Local, denominators: FloatArray) -> bool:
             if bend[row] and variance == 0:
                 return True
             total += float(bend[row]) ** 2 / variance if variance else 0.0
-    bound = total**0.5 + float(relative.max()) ** 0.5
+    bound = total**0.5 + max(float(relative.max()), 0.0) ** 0.5
     return not (bound <= BIAS and 2 * bound**2 + 4 * total <= SPREAD**2)
 
 
