@@ -11,18 +11,29 @@ from typing import Any
 from marshmallow import fields
 
 from core.errors import Note, Subject
-from core.outlet_analysis.account import AccountProblem
+from core.outlet_analysis.account import AccountProblem, named
 from core.outlet_analysis.conversion import YieldBasis
+from core.outlet_analysis.correlations import Correlation
+from core.outlet_analysis.monte_carlo import (
+    DEFAULT_DRAWS,
+    DEFAULT_SEED,
+    LEAST_DRAWS,
+    MOST_DRAWS,
+    Sampling,
+)
 from core.outlet_analysis.space_time_yield import ReactorSize, SizeBasis
 from core.reactions.reaction_set import ReactionSet
 from core.streams.known import Conditions
 from core.streams.metered import Measurement, MeteredStream
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import is_batch, read_conditions
-from schemas.fields import Choice, Map, Number, Quantity, Text, describe
+from schemas.fields import Choice, List, Map, Number, Quantity, Text, describe
+from schemas.quantities import clip
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
 from schemas.streams import Side, StreamReader, StreamSchema, substances_of
+
+MAX_CORRELATIONS = 1000
 
 
 class YieldsSchema(ClosedSchema):
@@ -51,12 +62,63 @@ class YieldsSchema(ClosedSchema):
 class UncertaintySchema(ClosedSchema):
     """How uncertainty is carried to the results."""
 
-    method = Choice("linear", load_default="linear", metadata=describe("Linear propagation (GUM)."))
+    method = Choice(
+        "linear",
+        "monte-carlo",
+        load_default="linear",
+        metadata=describe(
+            "Linear propagation (GUM), or the account fitted anew to readings drawn at random"
+            " (JCGM 101:2008)."
+        ),
+    )
     coverage = Number(
         above=0.5,
         at_most=0.9999,
         load_default=0.95,
         metadata=describe("Coverage probability of the intervals."),
+    )
+    draws = Number(
+        at_least=LEAST_DRAWS,
+        at_most=MOST_DRAWS,
+        integer=True,
+        metadata=describe("Of monte-carlo.", default=DEFAULT_DRAWS),
+    )
+    seed = Number(
+        at_least=0,
+        at_most=2**53 - 1,
+        integer=True,
+        metadata=describe(
+            "Of monte-carlo: the same seed gives the same answer.", default=DEFAULT_SEED
+        ),
+    )
+
+
+class CorrelationSchema(ClosedSchema):
+    """The errors of two readings are correlated."""
+
+    readings = List(
+        Text(
+            pattern=r"^(?:/[^\x00-\x1f]{0,80}){1,12}$",
+            wanted='a JSON Pointer into this request such as "/outlet/analysis/values/CO" is'
+            " allowed",
+            longest=400,
+        ),
+        at_least=2,
+        at_most=2,
+        required=True,
+        metadata=describe(
+            "Two different readings of this request, each by its JSON Pointer.",
+            examples=[["/feed/flows/CO", "/outlet/analysis/values/CO"]],
+        ),
+    )
+    coefficient = Number(
+        at_least=-1,
+        at_most=1,
+        required=True,
+        metadata=describe(
+            "Correlation of their own errors, those of 'u' or 'u_rel'; what they have in"
+            " common as 'u_shared' of one instrument comes on top."
+        ),
     )
 
 
@@ -85,6 +147,11 @@ class ConversionRequest(AccountSchema):
     )
     yields = fields.Nested(YieldsSchema)
     uncertainty = fields.Nested(UncertaintySchema)
+    correlations = List(
+        fields.Nested(CorrelationSchema),
+        at_most=MAX_CORRELATIONS,
+        metadata=describe("Pairs that are not named are independent, but for what they share."),
+    )
 
 
 _REQUEST = ConversionRequest()
@@ -111,6 +178,8 @@ class ConversionQuestion:
         Of the feed streams, then of the outlet streams.
     size : ReactorSize or None
         What space-time yields count by, where stated.
+    sampling : Sampling or None
+        Where uncertainty is to be carried through by draws.
     """
 
     problem: AccountProblem
@@ -121,6 +190,7 @@ class ConversionQuestion:
     readings: StreamReader
     stream_ids: tuple[str, ...]
     size: ReactorSize | None
+    sampling: Sampling | None = None
 
 
 def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
@@ -154,6 +224,15 @@ def _read_question(
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
     size = _size(request["reactor"], reader, batch) if "reactor" in request else None
+    uncertainty = request.get("uncertainty", {"method": "linear", "coverage": 0.95})
+    sampling = _read_sampling(uncertainty, reader)
+    if "uncertainty" in request:
+        reader.at(("uncertainty",), "/uncertainty")
+    if "draws" in uncertainty:
+        reader.at(("uncertainty", "draws"), "/uncertainty/draws")
+    correlations = _read_correlations(
+        request.get("correlations", ()), reader, (*sides["feed"], *sides["outlet"])
+    )
     if reader.faults:
         return None
     problem = AccountProblem(
@@ -162,12 +241,22 @@ def _read_question(
         feed=sides["feed"],
         outlet=sides["outlet"],
         batch=batch,
-        coverage=request.get("uncertainty", {"coverage": 0.95})["coverage"],
+        coverage=uncertainty["coverage"],
+        correlations=correlations,
     )
+    reader.notes.extend(readings.readings.instrument_notes())
     per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
     basis: YieldBasis = yields.get("basis", "key")
     return ConversionQuestion(
-        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids), size
+        problem,
+        basis,
+        yields.get("element"),
+        per_key,
+        conditions,
+        readings,
+        tuple(ids),
+        size,
+        sampling,
     )
 
 
@@ -222,6 +311,54 @@ def _size(document: Json, reader: RequestReader, batch: bool) -> ReactorSize | N
     if stated[0] not in measured:
         return None
     return ReactorSize(SIZES[stated[0]], measured[stated[0]], measured.get("time"))
+
+
+def _read_sampling(uncertainty: Json, reader: RequestReader) -> Sampling | None:
+    """Return what is to be drawn; None of linear propagation."""
+    if uncertainty["method"] == "monte-carlo":
+        return Sampling(
+            uncertainty.get("draws", DEFAULT_DRAWS), uncertainty.get("seed", DEFAULT_SEED)
+        )
+    for name in ("draws", "seed"):
+        if name in uncertainty:
+            reader.fault(
+                "field-not-used",
+                f"/uncertainty/{name}",
+                "linear propagation draws nothing; leave it out, or state the method 'monte-carlo'",
+            )
+    return None
+
+
+def _read_correlations(
+    stated: Sequence[Json], reader: RequestReader, streams: Sequence[MeteredStream]
+) -> tuple[Correlation, ...]:
+    """Return the correlations between readings of the streams, found by their pointers."""
+    if not stated:
+        return ()
+    subjects = [subject for stream in streams for subject in named(stream)]
+    conditions = [of for stream in streams for of in (stream.temperature, stream.pressure)]
+    subjects += [of.subject for of in conditions if of is not None]
+    places = {reader.places[subject][0]: subject for subject in subjects}
+    found = []
+    for k, said in enumerate(stated):
+        pointer = child("/correlations", k)
+        pair = []
+        for j, place in enumerate(said["readings"]):
+            if place in places:
+                pair.append(places[place])
+                continue
+            near = difflib.get_close_matches(place, places, n=1)
+            hint = f" (did you mean {near[0]!r}?)" if near else ""
+            reader.fault(
+                "unknown-reading",
+                child(pointer, "readings", j),
+                f"found {clip(place)!r}, which is no reading of this request{hint}; a reading is"
+                " named by its JSON Pointer, such as '/outlet/analysis/values/CO'",
+            )
+        if len(pair) == 2:
+            subject = reader.at(("correlations", k), pointer)
+            found.append(Correlation((pair[0], pair[1]), said["coefficient"], subject))
+    return tuple(found)
 
 
 def _check_outlet(

@@ -13,7 +13,7 @@ from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Note
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
-from core.outlet_analysis.conversion import ConversionResults
+from core.outlet_analysis.conversion import ConversionResults, flows_of
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
@@ -64,6 +64,11 @@ class ReconciledReadingSchema(OpenSchema):
         "(measured - reconciled)/sqrt(u^2 - u_reconciled^2): standard normal where nothing is"
         " wrong; null without redundancy."
     )
+    measurement_test = number(
+        "Of a reading whose error is correlated with another's: what it is tested by in place of"
+        " adjustment_over_u, the test of greatest power (Tamhane and Mah, 1985); standard normal"
+        " where nothing is wrong."
+    )
     redundancy = number("0: no other reading checks it; 1: it is known from the others.")
     smallest_detectable_error = number(
         "Found nine times in ten at one false alarm in twenty; null without redundancy."
@@ -109,6 +114,22 @@ class WithoutSuspectSchema(AlternativeSchema):
     )
 
 
+class UncertaintyResultSchema(OpenSchema):
+    """How uncertainty was carried through, where it was drawn.
+
+    That is by Monte Carlo in all numbers but those of the reconciliation and
+    without_suspect. Their value is the estimate from the readings.
+    """
+
+    method = fields.String(required=True, metadata=describe("", enum=["monte-carlo"]))
+    coverage = fields.Float(required=True)
+    draws = fields.Integer(required=True)
+    seed = fields.Integer(required=True, metadata=describe("Stated, or the default."))
+    left_out = fields.Integer(
+        required=True, metadata=describe("Draws that have no account, which nothing counts.")
+    )
+
+
 class ConversionResult(OpenSchema):
     """The account that fits the readings best."""
 
@@ -128,6 +149,7 @@ class ConversionResult(OpenSchema):
     closure = numbers_by_name(ClosureSchema, "By element.")
     reconciliation = fields.Nested(ReconciliationSchema, required=True)
     without_suspect = fields.Nested(WithoutSuspectSchema)
+    uncertainty = fields.Nested(UncertaintyResultSchema, metadata=describe("Of monte-carlo."))
 
 
 ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
@@ -142,10 +164,9 @@ RATES: dict[SizeBasis, str] = {
 ASSUMED = frozenset({"per-mole-of-key", "outlet-placement", "removed-taken-as-absent"})
 """Notes of the core that are assumptions."""
 
-METHOD = (
-    "weighted least squares on the mole account in extents of reaction; linear propagation of"
-    " uncertainty (GUM, JCGM 100:2008)"
-)
+ESTIMATION = "weighted least squares on the mole account in extents of reaction; "
+METHOD = ESTIMATION + "linear propagation of uncertainty (GUM, JCGM 100:2008)"
+BY_DRAWS = ESTIMATION + "propagation of distributions by Monte Carlo (JCGM 101:2008)"
 
 
 def write(
@@ -197,6 +218,15 @@ class _Writer:
         result["reconciliation"] = self._reconciliation()
         if results.without_suspects:
             result["without_suspect"] = self._without_suspect()
+        draws = results.draws
+        if draws is not None:
+            result["uncertainty"] = {
+                "method": "monte-carlo",
+                "coverage": draws.coverage,
+                "draws": draws.sampling.draws,
+                "seed": draws.sampling.seed,
+                "left_out": draws.left_out,
+            }
         notes, assumed = self.notes, self.assumed
         for note in (*self.edge.read_notes, *found.notes, *results.notes):
             (assumed if note.code in ASSUMED else notes).append(note)
@@ -209,7 +239,7 @@ class _Writer:
             result=result,
             notes=self.edge.notes(notes),
             assumed=self.edge.notes((*self.edge.read_assumed, *defaults, *assumed)),
-            method=METHOD,
+            method=METHOD if draws is None else BY_DRAWS,
             data=ATOMIC_WEIGHTS,
         )
 
@@ -217,13 +247,16 @@ class _Writer:
         value, u = float(of.value), float(of.u)
         if not np.isfinite(value):
             return None
-        return self.edge.uncertain(value, u, dimension, coverage=self.coverage, factor=self.factor)
+        ends = None
+        if of.low is not None and of.high is not None:
+            ends = (float(of.low), float(of.high))
+        return self.edge.uncertain(
+            value, u, dimension, coverage=self.coverage, factor=self.factor, ends=ends
+        )
 
     def _each(self, of: Uncertain, dimension: str = "dimensionless") -> list[Json | None]:
-        return [
-            self._number(Uncertain(value, u), dimension)
-            for value, u in zip(of.value, of.u, strict=True)
-        ]
+        one = (of.each(lambda values, k=k: values[k]) for k in range(len(of.value)))  # type: ignore[misc]
+        return [self._number(number_, dimension) for number_ in one]
 
     def _by(self, names: Sequence[str], of: Uncertain | None, dimension: str) -> Json:
         if of is None:
@@ -290,6 +323,11 @@ class _Writer:
                 volume = total * z * GAS_CONSTANT * temperature / pressure
             if volume is None:
                 self._note(NO_CONCENTRATIONS)
+        every = np.concatenate([forms, forms.sum(axis=0)[None]])
+        spread = flows_of(self.found, every, self.results.draws)
+        intervals = None
+        if spread.low is not None and spread.high is not None:
+            intervals = (spread.low, spread.high, self.coverage)
         stream = write_stream(
             self.edge,
             names,
@@ -300,8 +338,9 @@ class _Writer:
             temperature=temperature,
             pressure=pressure,
             compressibility=z,
-            u=self.found.u_of(forms),
-            total_u=float(self.found.u_of(forms.sum(axis=0)[None])[0]),
+            u=spread.u[:-1],
+            total_u=float(spread.u[-1]),
+            intervals=intervals,
         )
         if not told.all():
             stream["total"] = None
@@ -409,6 +448,8 @@ class _Writer:
             ),
             "suspect": bool(table.suspect_set[k]),
         }
+        if np.isfinite(table.measurement_test[k]):
+            said["measurement_test"] = self._plain(table.measurement_test[k])
         if table.within_limit[k] >= 0:
             said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
         return said

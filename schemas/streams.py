@@ -13,7 +13,13 @@ from marshmallow import fields
 from core.errors import Note, Subject
 from core.outlet_analysis.readings import FRACTIONS
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Analysis, FlowKind, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    FlowKind,
+    FlowReading,
+    Measurement,
+    MeteredStream,
+)
 from core.streams.stream import StreamPhase
 from schemas.analyses import AnalysisReader, AnalysisSchema, analysed_substances, each_analysis
 from schemas.edge import Json, RequestReader
@@ -417,9 +423,13 @@ class StreamReader:
         meter = self.meters.meter(document, pointer, subject, phase, flow.kind)
         if meter is None:
             return flow
-        # Whatever is wrong with the meter's conditions is wrong with this reading alone.
+        # Whatever is wrong with the meter's conditions is wrong with this reading.
         reading = flow.measurement
-        reading = replace(reading, u=math.hypot(reading.u, meter.u_rel * reading.value))
+        parts = dict(reading.shared)
+        for instrument, part in meter.shared:
+            parts[instrument] = parts.get(instrument, 0.0) + part * reading.value
+        own = math.hypot(reading.u, meter.u_rel * reading.value)
+        reading = replace(reading, u=own, shared=tuple(parts.items()))
         return replace(
             flow, measurement=reading, molar_volume=meter.molar_volume, design=meter.design
         )

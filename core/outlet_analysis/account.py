@@ -25,6 +25,7 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Subject, refuse
 from core.outlet_analysis.analysis_sums import AnalysisSum, analysis_sums
 from core.outlet_analysis.budget import over_budget
+from core.outlet_analysis.correlations import Correlation
 from core.outlet_analysis.forms import each
 from core.outlet_analysis.readings import (
     PRESSURE,
@@ -67,6 +68,8 @@ class AccountProblem:
     series : Mapping of Subject to Series
         The readings that vary over N samples, each in place of the single
         reading of the same subject; none for a single sample.
+    correlations : tuple of Correlation
+        Between the own errors of two readings; those not named are independent.
     """
 
     reactions: ReactionSet
@@ -76,6 +79,7 @@ class AccountProblem:
     batch: bool = False
     coverage: float = 0.95
     series: Mapping[Subject, Series] = field(default_factory=dict)
+    correlations: tuple[Correlation, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -190,7 +194,11 @@ def build_account(problem: AccountProblem) -> Account:
         outlet=tuple(in_order(stream) for stream in problem.outlet),
     )
     readings, writer = read(
-        problem.reactions, (*problem.feed, *problem.outlet), len(problem.feed), problem.series
+        problem.reactions,
+        (*problem.feed, *problem.outlet),
+        len(problem.feed),
+        problem.series,
+        problem.correlations,
     )
     of = problem.reactions
     reactions = list(range(of.rank)) if of.rank == len(of.nu) else independent_reactions(of.nu)
@@ -324,7 +332,7 @@ def _may_occur(problem: AccountProblem, substance: int) -> bool:
         nothing = any(
             reading.substance == substance
             and reading.measurement.value == 0
-            and reading.measurement.u == 0
+            and reading.measurement.total_u == 0
             and reading.measurement.subject not in problem.series
             for reading in stream.flows
         )

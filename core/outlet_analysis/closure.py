@@ -13,16 +13,18 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Note
 from core.outlet_analysis.account import Account, release_outlet
 from core.outlet_analysis.estimate import Estimate
-from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.monte_carlo import MOST_LEFT_OUT, Draws, drawn_blocks
 from core.outlet_analysis.preparation import BLOCK, prepare
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
 from core.outlet_analysis.solving import Fitted, fit_block
 from core.reactions.elements import element_matrix
+
+NAMES = ("into", "out", "ratio")
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,8 +47,12 @@ class Closures:
     notes: tuple[Note, ...]
 
 
-def element_closures(found: Estimate) -> Closures:
-    """Return the element closures of the readings of an estimate with an outlet."""
+def element_closures(found: Estimate, draws: Draws | None = None) -> Closures:
+    """Return the element closures of the readings of an estimate with an outlet.
+
+    With ``draws``, of a single sample, their uncertainties come from the same
+    draws of the readings.
+    """
     reactions = found.account.problem.reactions
     elements, atoms = element_matrix(reactions)
     single = found.account.readings.samples is None
@@ -68,12 +74,44 @@ def element_closures(found: Estimate) -> Closures:
             rows = np.flatnonzero(which.reshape(-1) == k)
             for first in range(0, len(rows), BLOCK):
                 of.fill(account, atoms, rows[first : first + BLOCK], found.first)
-    notes = _notes(found.account, elements, atoms, of, opaque)
     into, out, ratio = (
         Uncertain(value[0], u[0]) if single else Uncertain(value, u)
-        for value, u in ((of.values[name], of.spread[name]) for name in ("into", "out", "ratio"))
+        for value, u in ((of.values[name], of.spread[name]) for name in NAMES)
     )
+    if draws is not None and elements and not opaque:
+        into, out, ratio = _drawn(found, draws, atoms, (into, out, ratio))
+        for name, part in zip(NAMES, (into, out, ratio), strict=True):
+            of.values[name] = part.value[None]
+    notes = _notes(found.account, elements, atoms, of, opaque)
     return Closures(elements, into, out, ratio, tuple(notes))
+
+
+def _drawn(
+    found: Estimate,
+    draws: Draws,
+    atoms: FloatArray,
+    estimated: tuple[Uncertain, Uncertain, Uncertain],
+) -> tuple[Uncertain, Uncertain, Uncertain]:
+    """Closures with the spread that draws give them; absent where too many have none."""
+    account = release_outlet(found.account, np.flatnonzero(found.absent).tolist())
+    forms = np.concatenate([atoms @ account.feed_map, atoms @ account.outlet_map])
+    flows = np.full((draws.sampling.draws, len(forms)), np.nan)
+    for rows, series in drawn_blocks(account, draws.sampling):
+        block = flows[rows]
+        for outcome in fit_block(prepare(series, slice(0, len(block))), None):
+            if isinstance(outcome, Fitted):
+                block[outcome.rows] = outcome.z @ forms.T
+    flows = flows[draws.kept & np.isfinite(flows).all(axis=1)]
+    into, out, ratio = estimated
+    if len(flows) < (1 - MOST_LEFT_OUT) * draws.sampling.draws:
+        nothing = np.zeros(len(atoms), dtype=bool)
+        return into.where(nothing), out.where(nothing), ratio.where(nothing)
+    fed, left = np.split(flows, 2, axis=1)
+    return (
+        draws.spread(into.value, fed),
+        draws.spread(out.value, left),
+        draws.quotient(ratio.value, into.value, left, fed),
+    )
 
 
 class _Closures:
@@ -81,8 +119,8 @@ class _Closures:
 
     def __init__(self, samples: int, elements: int, substances: int) -> None:
         shape = (samples, elements)
-        self.values = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
-        self.spread = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+        self.values = {name: np.full(shape, np.nan) for name in NAMES}
+        self.spread = {name: np.full(shape, np.nan) for name in NAMES}
         self.tied = np.zeros(shape, dtype=bool)
         self.unread = np.zeros((samples, 2, substances), dtype=bool)
 

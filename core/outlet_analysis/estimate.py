@@ -9,11 +9,11 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.consistency import WithoutSuspects
-from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.nonlinearity import Local
 from core.outlet_analysis.readings import VOLUME
 
 
@@ -34,11 +34,18 @@ class ReadingTable:
         where nothing is wrong; absent without redundancy. Above zero where
         the reading lies above its reconciled value: what the account does to
         the reading has the other sign.
+    measurement_test : ndarray, shape (..., m)
+        Of a reading whose error is correlated with another's, in place of
+        adjustment_over_u: the test of greatest power (Tamhane and Mah, 1985);
+        absent of the others.
     redundancy : ndarray, shape (..., m)
-        1 - leverage: 0 where no other reading checks this one; absent of a bound.
+        1 - leverage, which is 1 - (reconciled_u/u)^2: 0 where no other reading
+        checks this one; absent of a bound. Of a correlated reading no more than
+        (3.24 u/smallest_detectable_error)^2.
     smallest_detectable_error : ndarray, shape (..., m)
         SI; an error this large is found nine times in ten by a test that
-        raises one false alarm in twenty: 3.24 u/sqrt(redundancy).
+        raises one false alarm in twenty: 3.24 u/sqrt(redundancy), or of a
+        correlated reading 3.24 over the root of what it weighs in its test.
     suspect_set : ndarray of int, shape (..., m)
         Number, from 1, of the set of readings that cannot be told apart and
         one of which errs; 0 where nothing is suspected.
@@ -56,6 +63,7 @@ class ReadingTable:
     reconciled: FloatArray
     reconciled_u: FloatArray
     adjustment_over_u: FloatArray
+    measurement_test: FloatArray
     redundancy: FloatArray
     smallest_detectable_error: FloatArray
     suspect_set: IntArray
@@ -116,6 +124,8 @@ class Estimate:
     first : int
         Where in the series this estimate begins.
     notes : tuple of Note
+    local : Local or None
+        Of a single sample: its fit and what it looks like there.
     """
 
     account: Account
@@ -137,6 +147,7 @@ class Estimate:
     failed: Mapping[int, Fault] = field(default_factory=dict)
     first: int = 0
     notes: tuple[Note, ...] = ()
+    local: Local | None = None
 
     @property
     def feed_flows(self) -> FloatArray:

@@ -8,7 +8,9 @@ step solves
     [ J'WJ   A' ] [ dz     ]   [ J'W (y - h) ]
     [ A     -D  ] [ lambda ] = [ y_c - h_c   ]
 
-with D of the compliances, so that in the end y_c - h_c = -D lambda.
+with D of the compliances, so that in the end y_c - h_c = -D lambda. Readings
+whose errors are correlated are stiff too: there A and y_c are combinations of
+them whose errors are independent (:mod:`core.outlet_analysis.mixture`).
 
 Source of the method: Gauss-Newton with Lagrange multipliers, J. Nocedal,
 S. J. Wright, Numerical Optimization, 2nd ed., Springer, 2006, ch. 10 and 18.
@@ -19,15 +21,12 @@ leaves the bases' domain, is damped as by D. W. Marquardt, J. SIAM 11 (1963) 431
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TypeAlias
 
 import numpy as np
-from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.outlet_analysis.forms import Evaluation, Forms, each
-
-IntArray: TypeAlias = NDArray[np.intp]
+from core.outlet_analysis.mixture import Mixture
 
 MOST_STEPS = 100
 SMALL_DECREMENT = 1e-6
@@ -37,6 +36,8 @@ NEGLIGIBLE_DECREMENT = 1e-16
 nothing is known of, and of what the step taken with the covariance may leave."""
 SMALL_MISS = 1e-7
 """How near an exact reading must be met, relative, before the last step squares what is left."""
+NEAR_END = 1e-4
+"""A step, relative, from which on the rounding of a step counts beside it."""
 ROUNDING_STEP = 1e-13
 """A step that rounding alone can make, relative."""
 LEFT_OF_BASE = 0.1
@@ -66,7 +67,10 @@ class Fit:
         1/u^2 of a soft reading; 0 of a missing or a stiff one.
     stiff : ndarray of int, shape (c,)
     compliance : ndarray, shape (N, c)
-        u^2 of a stiff reading; infinite where it is missing.
+        u^2 of a stiff reading, or the variance of a combination of them;
+        infinite where it is missing.
+    mixture : Mixture or None
+        Makes the combinations, where some of the stiff readings are correlated.
     """
 
     forms: Forms
@@ -74,6 +78,11 @@ class Fit:
     weight: FloatArray
     stiff: IntArray
     compliance: FloatArray
+    mixture: Mixture | None = None
+
+    def equations(self, of: FloatArray) -> FloatArray:
+        """Return what the stiff equations have of readings (N, m) or their slopes (N, m, n)."""
+        return mixed(self.mixture, of[:, self.stiff])
 
     def samples(self, rows: BoolArray | IntArray | slice) -> Fit:
         """Return the fit of the samples marked."""
@@ -83,7 +92,17 @@ class Fit:
             self.weight[rows],
             self.stiff,
             self.compliance[rows],
+            None if self.mixture is None else self.mixture.samples(rows),
         )
+
+
+def mixed(mixture: Mixture | None, part: FloatArray) -> FloatArray:
+    """Return the combinations of stiff readings (N, c), or of their slopes (N, c, n)."""
+    if mixture is None:
+        return part
+    if part.ndim == 2:
+        return np.asarray((mixture.forward @ part[:, :, None])[:, :, 0])
+    return np.asarray(mixture.forward @ part)
 
 
 @dataclass(frozen=True, eq=False)
@@ -92,6 +111,39 @@ class Solution:
 
     z: FloatArray
     converged: BoolArray
+
+
+@dataclass(frozen=True, eq=False)
+class CorrelatedTests:
+    """What tests of readings take where some have correlated errors; V is their covariance.
+
+    Attributes
+    ----------
+    information : ndarray, shape (N, m, m)
+        P = V^-1 V_r V^-1, with V_r the covariance of the residuals: what an
+        error in one reading moves in the multiplier of another.
+    multiplier : ndarray, shape (N, m)
+        V^-1 (measured - fitted), of covariance P.
+    residual_variance : ndarray, shape (N, m)
+    freedom, chi_square : ndarray, shape (N,)
+        What the stiff readings contribute.
+    """
+
+    information: FloatArray
+    multiplier: FloatArray
+    residual_variance: FloatArray
+    freedom: FloatArray
+    chi_square: FloatArray
+
+    def samples(self, rows: BoolArray) -> CorrelatedTests:
+        """Return those of the samples marked."""
+        return CorrelatedTests(
+            self.information[rows],
+            self.multiplier[rows],
+            self.residual_variance[rows],
+            self.freedom[rows],
+            self.chi_square[rows],
+        )
 
 
 @dataclass(frozen=True, eq=False)
@@ -109,7 +161,9 @@ class Curvature:
     residual : ndarray, shape (N, m)
         measured - fitted, one step further on.
     redundancy : ndarray, shape (N, m)
-        1 - leverage; 0 of a missing or an exact reading.
+        1 - leverage; 0 of a missing or an exact reading. Of a correlated one u^2
+        times its information: the same where nothing is correlated, and above 1
+        where others share its error.
     control : ndarray, shape (N, m)
         How firmly the other readings hold this one, 0 to about 1: the
         redundancy of a soft reading; of a stiff one a measure that does not
@@ -119,6 +173,9 @@ class Curvature:
     inflation : ndarray, shape (N,)
         Largest ratio of an unknown's variance to what it would be with all
         the others known; infinite where the matrix is singular.
+    correlated : CorrelatedTests or None
+    rest : _Rest or None
+        Of a single sample: what it was computed from.
     """
 
     z: FloatArray
@@ -129,6 +186,8 @@ class Curvature:
     control: FloatArray
     slopes: FloatArray
     inflation: FloatArray
+    correlated: CorrelatedTests | None = None
+    rest: _Rest | None = None
 
     def samples(self, rows: BoolArray) -> Curvature:
         """Return those of the samples marked."""
@@ -141,6 +200,7 @@ class Curvature:
             self.control[rows],
             self.slopes[rows],
             self.inflation[rows],
+            None if self.correlated is None else self.correlated.samples(rows),
         )
 
 
@@ -173,14 +233,38 @@ def solve_stack(matrices: FloatArray, right: FloatArray) -> FloatArray:
         )
 
 
+def _refine(matrices: FloatArray, right: FloatArray, solved: FloatArray, rows: BoolArray) -> None:
+    """Solve the systems marked for what is left, so that each equation is met to its own rounding.
+
+    Nearly exact readings make multipliers that are large beside the step;
+    elimination leaves of the equations what it rounds of the largest of them. Once is enough for
+    a small error row by row: R. D. Skeel, Math. Comp. 35 (1980) 817.
+    """
+    if not rows.any():
+        return
+    matrix, x = matrices[rows], solved[rows, :, None]
+    left = right[rows, :, None] - matrix @ x
+    better = x + solve_stack(matrix, left)
+    solved[rows] = np.where(np.isfinite(better), better, x)[:, :, 0]
+
+
+def _nearly_exact(fit: Fit) -> BoolArray:
+    """Which samples have stiff readings that are not exact, shape (N,)."""
+    return np.asarray((np.isfinite(fit.compliance) & (fit.compliance > 0)).any(axis=1))
+
+
 def _system(
     h: FloatArray,
     a: FloatArray,
     compliance: FloatArray,
     natural: FloatArray,
     damping: FloatArray | float,
+    mixture: Mixture | None = None,
 ) -> _System:
     diagonal = h.diagonal(axis1=1, axis2=2)
+    if mixture is not None:
+        # What the unknowns' sizes are taken from: as if nothing were correlated.
+        diagonal = diagonal + (a[:, mixture.linked] ** 2).sum(axis=1)
     seen = diagonal > 0
     if seen.all():
         size = 1 / np.sqrt(diagonal)
@@ -195,6 +279,8 @@ def _system(
         return _System(scaled, size, np.empty((len(h), 0)))
     rows = a * size[:, None, :]
     gauge = np.sqrt((rows * rows).sum(axis=-1))
+    if mixture is not None:
+        gauge = np.where(gauge > 0, gauge, np.sqrt(compliance))
     gauge = np.where(np.isfinite(compliance) & (gauge > 0), gauge, np.inf)
     # A missing equation leaves its multiplier at zero: row of A zero, compliance one.
     rows /= gauge[:, :, None]
@@ -276,14 +362,17 @@ def _step(fit: Fit, found: Evaluation, sizes: FloatArray, damping: FloatArray) -
     transposed = (slopes * fit.weight[:, :, None]).transpose(0, 2, 1)
     h = transposed @ slopes
     g = (transposed @ residual[:, :, None])[:, :, 0]
-    a = slopes[:, fit.stiff]
-    system = _system(h, a, fit.compliance, sizes, damping)
+    a = fit.equations(slopes)
+    system = _system(h, a, fit.compliance, sizes, damping, fit.mixture)
     n, c = h.shape[-1], a.shape[1]
     right = system.size * g
     if c:
-        gap = residual[:, fit.stiff]
+        gap = fit.equations(residual)
         right = np.concatenate([right, gap / system.gauge], axis=1)
     solved = solve_stack(system.matrix, right[:, :, None])[:, :, 0]
+    if c:
+        near_end = (np.abs(solved[:, :n] * system.size) < NEAR_END * sizes).all(axis=-1)
+        _refine(system.matrix, right, solved, near_end & _nearly_exact(fit))
     step = solved[:, :n] * system.size
     sound: BoolArray = np.asarray(np.isfinite(step).all(axis=-1))
     if not sound.all():
@@ -408,7 +497,10 @@ def _hard(fit: Fit, multipliers: FloatArray) -> _Hard:
     there = np.isfinite(fit.compliance) & np.isfinite(multipliers)
     slope = np.where(there, 2 * np.abs(np.where(there, multipliers, 0.0)), 0.0)
     near = np.isfinite(fit.compliance) & (fit.compliance > 0)
-    rounding = (ROUNDING_GAP * fit.measured[:, fit.stiff]) ** 2
+    size = np.abs(fit.measured[:, fit.stiff])
+    if fit.mixture is not None:
+        size = (np.abs(fit.mixture.forward) @ size[:, :, None])[:, :, 0]
+    rounding = (ROUNDING_GAP * size) ** 2
     return _Hard(slope, np.where(near, np.where(near, fit.compliance, 0.0) + rounding, 0.0))
 
 
@@ -417,7 +509,7 @@ def _merit(fit: Fit, of: Evaluation, hard: _Hard | None) -> FloatArray:
     residual = fit.measured - of.value
     total: FloatArray = 0.5 * (fit.weight * residual * residual).sum(axis=-1)
     if hard is not None:
-        total = total + hard.penalty(residual[:, fit.stiff])
+        total = total + hard.penalty(fit.equations(residual))
     return total
 
 
@@ -429,6 +521,7 @@ def linear_step(
     compliance: FloatArray,
     nominal: FloatArray,
     ridge: float,
+    mixture: Mixture | None = None,
 ) -> FloatArray:
     """Solve linear readings slopes (N, m, n) . z = right (N, m) once, from nothing.
 
@@ -436,12 +529,12 @@ def linear_step(
     """
     weighted = slopes * weight[:, :, None]
     transposed = weighted.transpose(0, 2, 1)
-    h, a = transposed @ slopes, slopes[:, stiff]
-    system = _system(h, a, compliance, nominal, ridge)
+    h, a = transposed @ slopes, mixed(mixture, slopes[:, stiff])
+    system = _system(h, a, compliance, nominal, ridge, mixture)
     g = (transposed @ right[:, :, None])[:, :, 0]
     target = system.size * g + ridge * nominal / system.size
     if len(stiff):
-        gap = np.where(np.isfinite(compliance), right[:, stiff], 0.0)
+        gap = np.where(np.isfinite(compliance), mixed(mixture, right[:, stiff]), 0.0)
         target = np.concatenate([target, gap / system.gauge], axis=1)
     solved = solve_stack(system.matrix, target[:, :, None])[:, : h.shape[-1], 0]
     z = solved * system.size
@@ -468,7 +561,8 @@ def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     weighted = slopes * fit.weight[:, :, None]
     transposed = weighted.transpose(0, 2, 1)
     h = transposed @ slopes
-    system = _system(h, slopes[:, fit.stiff], fit.compliance, natural, 0.0)
+    a = fit.equations(slopes)
+    system = _system(h, a, fit.compliance, natural, 0.0, fit.mixture)
     n = h.shape[-1]
     identity = np.broadcast_to(np.eye(system.matrix.shape[-1]), system.matrix.shape)
     inverse = solve_stack(system.matrix, identity)
@@ -476,9 +570,11 @@ def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     covariance *= system.size[:, None, :]
     right = system.size * (transposed @ residual[:, :, None])[:, :, 0]
     if len(fit.stiff):
-        gap = np.where(np.isfinite(fit.compliance), residual[:, fit.stiff], 0.0)
+        gap = np.where(np.isfinite(fit.compliance), fit.equations(residual), 0.0)
         right = np.concatenate([right, gap / system.gauge], axis=1)
-    step = (inverse @ right[:, :, None])[:, :, 0]
+    step = inverse @ right[:, :, None]
+    step += inverse @ (right[:, :, None] - system.matrix @ step)
+    step = step[:, :, 0]
     return _Rest(slopes, residual, system.size, system.gauge, inverse, covariance, step)
 
 
@@ -514,7 +610,12 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     step = rest.size * rest.step[:, :n]
     residual = rest.residual - (slopes @ step[:, :, None])[:, :, 0]
     control = redundancy
-    if c:
+    correlated = None
+    if fit.mixture is not None:
+        redundancy = np.clip(redundancy, 0.0, 1.0)
+        control = np.array(redundancy)
+        correlated = _correlated(fit, fit.mixture, rest, residual, variance, redundancy, control)
+    elif c:
         # u^2 (A H^-1 A' + D)^-1 from the corner of the inverse: 1 - leverage without
         # cancellation, and the residual from the multiplier likewise.
         corner = -inverse.diagonal(axis1=1, axis2=2)[:, n:]
@@ -533,8 +634,68 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
         covariance,
         np.maximum(variance, 0.0),
         residual,
-        np.clip(redundancy, 0.0, 1.0),
+        redundancy if correlated is not None else np.clip(redundancy, 0.0, 1.0),
         control,
         slopes,
         inflation,
+        correlated,
+        rest if len(z) == 1 else None,
     )
+
+
+def _correlated(
+    fit: Fit,
+    mixture: Mixture,
+    rest: _Rest,
+    residual: FloatArray,
+    variance: FloatArray,
+    redundancy: FloatArray,
+    control: FloatArray,
+) -> CorrelatedTests:
+    """What the tests of correlated readings take; the rows of the stiff ones are put right.
+
+    In terms of the inverse [C B; B' -E] of the system, with P the matrix that
+    makes of the readings the residuals weighed by the inverse of their
+    covariance: P is W - W J C J'W of the soft readings, E of the stiff
+    equations, and -B'J'W between the two.
+    """
+    n, stiff = rest.covariance.shape[1], fit.stiff
+    there = mixture.there
+    per_gauge = 1 / rest.gauge
+    border = rest.inverse[:, :n, n:] * rest.size[:, :, None] * per_gauge[:, None, :]
+    corner = -rest.inverse[:, n:, n:] * per_gauge[:, :, None] * per_gauge[:, None, :]
+    compliance = np.where(np.isfinite(fit.compliance), fit.compliance, 0.0)
+    multiplier_of_equation = -rest.step[:, n:] * per_gauge
+    turned = mixture.forward.transpose(0, 2, 1)
+
+    weighed = rest.slopes * fit.weight[:, :, None]
+    information = -(weighed @ rest.covariance @ weighed.transpose(0, 2, 1))
+    m = information.shape[-1]
+    information[:, range(m), range(m)] += fit.weight
+    cross = -(turned @ border.transpose(0, 2, 1) @ weighed.transpose(0, 2, 1))
+    information[:, stiff] = cross
+    information[:, :, stiff] = cross.transpose(0, 2, 1)
+    inner = turned @ corner @ mixture.forward
+    information[:, stiff[:, None], stiff] = inner
+
+    multiplier = fit.weight * residual
+    multiplier[:, stiff] = (turned @ multiplier_of_equation[:, :, None])[:, :, 0]
+    moved = (mixture.back @ (compliance * multiplier_of_equation)[:, :, None])[:, :, 0]
+    residual[:, stiff] = np.where(there, moved, residual[:, stiff])
+
+    spread = mixture.back * compliance[:, None, :]
+    of_residual = ((spread @ corner) * spread).sum(axis=-1)
+    square = mixture.u**2
+    residual_variance = np.where(fit.weight > 0, redundancy, 0.0)
+    residual_variance /= np.where(fit.weight > 0, fit.weight, 1.0)
+    residual_variance[:, stiff] = np.where(there, np.maximum(of_residual, 0.0), 0.0)
+    variance[:, stiff] = np.where(there, square - of_residual, variance[:, stiff])
+    own = np.maximum(inner.diagonal(axis1=1, axis2=2), 0.0)
+    redundancy[:, stiff] = np.where(there, square * own, 0.0)
+    length = ((rest.slopes[:, stiff] * rest.size[:, None, :]) ** 2).sum(axis=-1)
+    # A reading that tells nothing of the account may tell the errors of others.
+    control[:, stiff] = np.where(there, own * np.maximum(length, square), 0.0)
+    control[:, stiff] *= square > 0
+    freedom = np.clip(compliance * corner.diagonal(axis1=1, axis2=2), 0.0, 1.0).sum(axis=1)
+    chi_square = (compliance * multiplier_of_equation**2).sum(axis=1)
+    return CorrelatedTests(information, multiplier, residual_variance, freedom, chi_square)

@@ -15,12 +15,11 @@ from itertools import combinations
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fact, Fault, Readings, Subject
 from core.outlet_analysis.account import Account, fed_in, listed
 from core.outlet_analysis.budget import WORK_OF_SETTLING
 from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import (
     FRACTIONS,
     VOLUME,

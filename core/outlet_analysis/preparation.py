@@ -15,12 +15,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.budget import NEARLY_EXACT
+from core.outlet_analysis.correlations import Correlated
 from core.outlet_analysis.forms import Forms, each
-from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
+from core.outlet_analysis.gauss_newton import Fit, linear_step
+from core.outlet_analysis.mixture import Mixture, mixture_of
 from core.outlet_analysis.readings import ABOVE, BELOW, MOLAR_DENSITY, VOLUME
 
 BLOCK = 2048
@@ -50,6 +52,7 @@ class Block:
     limit : ndarray, shape (N, m + 1)
     nominal : ndarray, shape (N, n)
         A plausible value of each unknown.
+    correlated : Correlated or None
     """
 
     account: Account
@@ -60,6 +63,7 @@ class Block:
     bound: NDArray[np.int8]
     limit: FloatArray
     nominal: FloatArray
+    correlated: Correlated | None = None
 
     @property
     def exact(self) -> BoolArray:
@@ -129,9 +133,22 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
         forms.bases,
         np.concatenate([forms.exponents, np.zeros((1, forms.exponents.shape[1]))]),
     )
-    block = Block(account, forms, measured, sigma, active, bound, limit, np.empty(0))
+    correlated = None
+    if readings.correlated is not None:
+        proper = active & (bound == 0) & (sigma > 0)
+        correlated = _between_proper(readings.correlated.samples(rows), proper)
+    block = Block(account, forms, measured, sigma, active, bound, limit, np.empty(0), correlated)
     per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
     return replace(block, nominal=_nominal(block, per_mole))
+
+
+def _between_proper(of: Correlated, proper: BoolArray) -> Correlated:
+    """Return the correlations of the readings that are proper ones in their sample, (N, m)."""
+    there = proper[:, of.rows]
+    if there.all():
+        return of
+    both = there[:, :, None] & there[:, None, :]
+    return Correlated(of.rows, np.where(both, of.coefficients, np.eye(len(of.rows))))
 
 
 def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
@@ -231,6 +248,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
             block.bound[rows],
             block.limit[rows],
             block.nominal[rows],
+            None if block.correlated is None else block.correlated.samples(rows),
         )
     slopes, right, u = linearised(block)
     exact = np.flatnonzero(kind == 1)
@@ -245,17 +263,29 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
     stiff, soft = kept, block.active
     if len(nearly):
         stiff = np.union1d(kept, nearly).astype(np.intp)
+    linked = None
+    if block.correlated is not None:
+        linked = np.setdiff1d(block.correlated.rows, exact)
+        stiff = np.union1d(stiff, linked).astype(np.intp)
     if len(exact) or len(stiff):
         soft = soft.copy()
         soft[:, stiff] = False
         soft[:, dependent] = False
     there = block.active[:, stiff]
+    compliance = np.where(there, block.u[:, stiff] ** 2, np.inf)
+    of_start = np.where(there, u[:, stiff] ** 2, np.inf)
+    mixture = start_mixture = None
+    if linked is not None and len(linked):
+        mixture, compliance = _mixture(block, stiff, linked)
+        start_mixture = mixture.rescaled(u[:, stiff])
+        of_start = np.where(mixture.linked, compliance, of_start)
     fit = Fit(
         block.forms,
         block.measured,
         _weights(soft, block.u),
         stiff,
-        np.where(there, block.u[:, stiff] ** 2, np.inf),
+        compliance,
+        mixture,
     )
     start_weight = _weights(soft, u)
     start = linear_step(
@@ -263,12 +293,26 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
         right,
         start_weight,
         stiff,
-        np.where(there, u[:, stiff] ** 2, np.inf),
+        of_start,
         block.nominal,
         START_RIDGE,
+        start_mixture,
     )
     start = _inside(block, start)
     return Group(rows, fit, start, natural_size(block.account, start), dependent)
+
+
+def _mixture(block: Block, stiff: IntArray, linked: IntArray) -> tuple[Mixture, FloatArray]:
+    """Return the combinations of the stiff readings, ``linked`` those that are correlated."""
+    of = block.correlated
+    assert of is not None
+    at, among = np.searchsorted(stiff, linked), np.searchsorted(of.rows, linked)
+    c = len(stiff)
+    coefficients = np.array(np.broadcast_to(np.eye(c), (len(of.coefficients), c, c)))
+    coefficients[:, at[:, None], at] = of.coefficients[:, among[:, None], among]
+    is_linked = np.zeros(c, dtype=bool)
+    is_linked[at] = True
+    return mixture_of(is_linked, block.active[:, stiff], block.u[:, stiff], coefficients)
 
 
 def _weights(soft: BoolArray, u: FloatArray) -> FloatArray:

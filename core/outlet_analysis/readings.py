@@ -10,7 +10,7 @@ account and the one that leaves feed and outlet unconnected.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Final
 
@@ -20,9 +20,16 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Subject, refuse
+from core.outlet_analysis.correlations import Correlated, Correlation, Errors, Shared
 from core.outlet_analysis.forms import Forms
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Analysis, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    FlowReading,
+    Instrument,
+    Measurement,
+    MeteredStream,
+)
 
 BELOW: Final = -1
 ABOVE: Final = 1
@@ -47,13 +54,17 @@ class Series:
     Attributes
     ----------
     value, u : ndarray, shape (N,)
-        SI; not a number where the reading is missing.
+        SI; not a number where the reading is missing. ``u`` is of the reading's
+        own error.
     bound : ndarray of int8, shape (N,), or None
         ``BELOW``, ``ABOVE`` or 0; None where all are readings proper.
     molar_volume : ndarray, shape (N,), or None
         m3/mol at a gas meter's own conditions, where they vary.
     density_ratio : ndarray, shape (N,), or None
         ``ratio`` of the design of a differential-pressure meter, where it varies.
+    shared : Mapping of Instrument to float or ndarray, shape (N,)
+        As :attr:`core.streams.metered.Measurement.shared`: one error all series
+        long, however large its effect on each sample.
     """
 
     value: FloatArray
@@ -61,6 +72,7 @@ class Series:
     bound: NDArray[np.int8] | None = None
     molar_volume: FloatArray | None = None
     density_ratio: FloatArray | None = None
+    shared: Mapping[Instrument, float | FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,7 +85,7 @@ class Readings:
     forms : Forms
         Over the stream space.
     measured, u : ndarray, shape (N, m)
-        As read, SI; not a number where missing.
+        As read, SI; not a number where missing. ``u`` is own and shared parts together.
     bound : ndarray of int8, shape (N, m)
         ``BELOW``, ``ABOVE`` or 0.
     share : ndarray of bool, shape (m,)
@@ -92,6 +104,8 @@ class Readings:
         Further quantities that some reading speaks of.
     samples : int or None
         N; None for a single sample given without a sample axis.
+    correlated : Correlated or None
+        Readings whose errors are not independent.
     """
 
     subjects: tuple[Subject, ...]
@@ -107,6 +121,7 @@ class Readings:
     known: BoolArray
     used: frozenset[tuple[int, int]]
     samples: int | None
+    correlated: Correlated | None = None
 
 
 def describe_stream(streams: tuple[MeteredStream, ...], feeds: int, g: int) -> str:
@@ -580,6 +595,7 @@ def read(
     streams: tuple[MeteredStream, ...],
     feeds: int,
     series: Mapping[Subject, Series],
+    correlations: Sequence[Correlation] = (),
 ) -> tuple[Readings, ReadingWriter]:
     """Write every reading of feeds followed by outlets as a form.
 
@@ -593,7 +609,7 @@ def read(
     ------
     Refused
         A reading that cannot be put as a form, or whose uncertainty or limit
-        makes no sense.
+        makes no sense; also as :meth:`core.outlet_analysis.correlations.Errors.together`.
     """
     writer = ReadingWriter(reactions, streams, feeds, series)
     for g in range(len(streams)):
@@ -614,6 +630,17 @@ def read(
             u[:, column] = found.u
             bound[:, column] = 0 if found.bound is None else found.bound
     measured = np.where(np.isfinite(measured), measured, np.nan)
+    shared: dict[int, Shared] = {
+        k: dict(of.shared) for k, of in enumerate(writer.measurements) if of.shared
+    }
+    for column, reading in enumerate(writer.measurements) if series else ():
+        found = series.get(reading.subject)
+        if found is not None:
+            shared.pop(column, None)
+            if found.shared:
+                shared[column] = found.shared
+    _check_u(writer.measurements, measured, u, bound)
+    u, correlated = Errors(writer.measurements, u, shared).together(correlations)
     forms = writer.forms()
     readings = Readings(
         subjects=tuple(reading.subject for reading in writer.measurements),
@@ -629,8 +656,9 @@ def read(
         known=np.array(writer.known, dtype=bool),
         used=frozenset(writer.used),
         samples=samples,
+        correlated=correlated,
     )
-    _check(readings)
+    _check_limits(readings)
     return readings, writer
 
 
@@ -646,19 +674,28 @@ def _per_mole(writer: ReadingWriter, forms: Forms) -> FloatArray:
     return np.where(plain, mean * forms.constants, typical)
 
 
-def _check(readings: Readings) -> None:
-    there = np.isfinite(readings.measured)
+def _check_u(
+    measurements: Sequence[Measurement],
+    measured: FloatArray,
+    u: FloatArray,
+    bound: NDArray[np.int8],
+) -> None:
+    there = np.isfinite(measured)
     with np.errstate(invalid="ignore"):
-        wrong = there & (readings.bound == 0) & ~(np.isfinite(readings.u) & (readings.u >= 0))
+        wrong = there & (bound == 0) & ~(np.isfinite(u) & (u >= 0))
     if wrong.any():
         row, column = np.argwhere(wrong)[0]
         raise refuse(
             "uncertainty-out-of-range",
-            readings.subjects[column],
+            measurements[column].subject,
             "found a standard uncertainty of {found}; it must be a finite number, 0 or more"
             " (0 is exact)",
-            found=Amount(float(readings.u[row, column])),
+            found=Amount(float(u[row, column])),
         )
+
+
+def _check_limits(readings: Readings) -> None:
+    there = np.isfinite(readings.measured)
     limited = there & (readings.bound != 0)
     if limited.any():
         above = (readings.bound == ABOVE) & readings.share & (readings.measured >= 1)

@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.analysis_sums import sum_faults
@@ -29,7 +29,8 @@ from core.outlet_analysis.consistency import (
     without_suspects,
 )
 from core.outlet_analysis.estimate import Estimate, ReadingTable
-from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
+from core.outlet_analysis.gauss_newton import SINGULAR
+from core.outlet_analysis.nonlinearity import Local
 from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
@@ -98,6 +99,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
     failed: dict[int, Fault] = {}
     without: tuple[WithoutSuspects, ...] = ()
     ways, cut = 0, False
+    local = None
     for outcome in fit_block(block, _reported(account)):
         if not isinstance(outcome, Fitted):
             failed.update((int(row), outcome[1]) for row in outcome[0])
@@ -105,6 +107,8 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         at, fit = outcome.rows, outcome.fit
         stated, unknown = _stated(block, outcome)
         seen = examine(fit, outcome.z, outcome.natural, stated)
+        if readings.samples is None:
+            local = Local(fit, seen.curvature)
         sets = np.zeros((len(at), m), dtype=np.intp)
         if seen.doubtful.any():
             sets, chosen, cut = suspects(outcome, seen, stated, m)
@@ -152,6 +156,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         cut=cut,
         failed=failed,
         first=rows.start,
+        local=local,
     )
     return replace(result, notes=tuple(remarks(result)))
 
@@ -180,10 +185,14 @@ def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> 
     bound: NDArray[np.int8] = block.bound[:, :-1]
     there, limited = np.isfinite(measured), bound != 0
     redundancy = np.where(limited | ~there, np.nan, out.redundancy)
-    checked = redundancy > 0
-    detectable = DETECTABLE * u / np.sqrt(np.where(checked, redundancy, 1.0))
+    checked = ~np.isnan(redundancy) & (out.control > 0)
+    detectable = DETECTABLE * u / np.sqrt(np.where(checked, out.control, 1.0))
     inside = np.where(bound == BELOW, out.reconciled <= measured, out.reconciled >= measured)
     known = limited & there & np.isfinite(out.reconciled)
+    test = np.full_like(out.test, np.nan)
+    if block.correlated is not None:
+        rows = block.correlated.rows
+        test[:, rows] = out.test[:, rows]
     return ReadingTable(
         subjects=block.account.readings.subjects,
         measured=measured,
@@ -192,6 +201,7 @@ def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> 
         reconciled=out.reconciled,
         reconciled_u=out.reconciled_u,
         adjustment_over_u=out.adjustment,
+        measurement_test=test,
         redundancy=redundancy,
         smallest_detectable_error=np.where(checked, detectable, np.nan),
         suspect_set=out.sets,
@@ -209,7 +219,9 @@ class _Results:
         self.reconciled = np.full((samples, m), np.nan)
         self.reconciled_u = np.full((samples, m), np.nan)
         self.adjustment = np.full((samples, m), np.nan)
+        self.test = np.full((samples, m), np.nan)
         self.redundancy = np.full((samples, m), np.nan)
+        self.control = np.full((samples, m), np.nan)
         self.chi_square = np.full(samples, np.nan)
         self.limit = np.full(samples, np.nan)
         self.inflation = np.full(samples, np.nan)
@@ -224,8 +236,11 @@ class _Results:
         self.covariance[at] = seen.curvature.covariance
         self.reconciled[at] = seen.value[:, :m]
         self.reconciled_u[at] = np.sqrt(seen.curvature.variance[:, :m])
-        self.adjustment[at] = seen.standardised[:, :m]
-        self.redundancy[at] = np.where(seen.testable, seen.loose.redundancy, 0.0)[:, :m]
+        self.adjustment[at] = seen.adjustment[:, :m]
+        if seen.loose.correlated is not None:
+            self.test[at] = seen.standardised[:, :m]
+        self.redundancy[at] = seen.redundancy[:, :m]
+        self.control[at] = np.where(seen.testable, seen.loose.redundancy, 0.0)[:, :m]
         self.chi_square[at] = seen.chi_square
         self.limit[at] = seen.limit
         self.inflation[at] = seen.curvature.inflation

@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
-from core.errors import Fault
+from core.arrays import BoolArray, FloatArray, IntArray
+from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import Fit, IntArray, covariance_at, least_squares
+from core.outlet_analysis.gauss_newton import Fit, covariance_at, least_squares
 from core.outlet_analysis.observability import (
     equilibrated,
     open_directions,
@@ -21,7 +21,14 @@ from core.outlet_analysis.observability import (
     under_determined,
     without_columns,
 )
-from core.outlet_analysis.preparation import AGREEMENT, Block, Group, conflict, groups
+from core.outlet_analysis.preparation import (
+    AGREEMENT,
+    DEPENDENT,
+    Block,
+    Group,
+    conflict,
+    groups,
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -202,6 +209,7 @@ def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:
         np.concatenate([fit.weight, np.zeros((n, d))], axis=1),
         np.concatenate([fit.stiff, np.arange(m, m + d)]),
         np.concatenate([fit.compliance, np.zeros((n, d))], axis=1),
+        None if fit.mixture is None else fit.mixture.beside(d),
     )
 
 
@@ -211,11 +219,18 @@ def _solved(
     start, natural, rows = group.start, group.natural, group.rows
     if not mine.all():
         start, natural, rows = start[mine], natural[mine], rows[mine]
+    whole = fit
+    fit = without_repeats(fit, start, natural)
     solution = least_squares(fit, start, natural)
     good = solution.converged
     if not good.all():
         yield rows[~good], not_converged(block.account)
     agreed = good
+    if fit is not whole:
+        at_odds = good & _at_odds(whole, fit, solution.z)
+        for k in np.flatnonzero(at_odds).tolist():
+            yield rows[k : k + 1], _fully_correlated(block.account, whole, k)
+        agreed = good = good & ~at_odds
     if len(group.dependent):
         found = fit.forms.at(solution.z)
         slopes = fit.forms.jacobian(found)[:, group.dependent] * natural[:, None, :]
@@ -235,6 +250,65 @@ def _solved(
         yield fitted
     elif agreed.any():
         yield fitted.samples(agreed)
+
+
+def without_repeats(fit: Fit, z: FloatArray, natural: FloatArray) -> Fit:
+    """Leave out exact combinations of correlated readings that other exact ones imply.
+
+    Fractions of a whole sample whose errors cancel in the sum say, exactly,
+    that they add up to it.
+    """
+    if fit.mixture is None or not (fit.compliance[:, fit.mixture.linked] == 0).any():
+        return fit
+    exact, linked = fit.compliance == 0, fit.mixture.linked
+    slopes = fit.forms.jacobian(fit.forms.at(z))[:, fit.stiff] * natural[:, None, :]
+    square = (slopes * slopes).sum(axis=-1, keepdims=True)
+    counted = np.sqrt(fit.mixture.forward**2 @ square)
+    scaled = (fit.mixture.forward @ slopes) / np.where(counted > 0, counted, 1.0)
+    repeats = np.zeros_like(exact)
+    directions = np.zeros_like(scaled)
+    # What is stated as exact by itself goes before what follows from correlations.
+    for row in np.argsort(linked, kind="stable").tolist():
+        if not exact[:, row].any():
+            continue
+        along = directions @ scaled[:, row, :, None]
+        rest = scaled[:, row] - (directions * along).sum(axis=1)
+        left = np.sqrt((rest * rest).sum(axis=-1))
+        new = exact[:, row] & (left > DEPENDENT)
+        directions[:, row] = np.where(new[:, None], rest / np.where(new, left, 1.0)[:, None], 0.0)
+        repeats[:, row] = exact[:, row] & ~new & linked[row]
+    if not repeats.any():
+        return fit
+    return replace(fit, compliance=np.where(repeats, np.inf, fit.compliance))
+
+
+def _at_odds(whole: Fit, fit: Fit, z: FloatArray) -> BoolArray:
+    """In which samples the combinations left out of a fit do not hold in it after all, (N,)."""
+    left_out = np.isinf(fit.compliance) & (whole.compliance == 0)
+    gap = np.abs(fit.equations(fit.measured - fit.forms.at(z).value))
+    assert fit.mixture is not None
+    size = np.abs(fit.mixture.forward) @ np.abs(fit.measured[:, fit.stiff])[:, :, None]
+    return np.asarray((left_out & (gap > AGREEMENT * size[:, :, 0])).any(axis=1))
+
+
+def _fully_correlated(account: Account, fit: Fit, sample: int) -> Fault:
+    """Say which readings of a sample leave a combination without any error."""
+    mixture = fit.mixture
+    assert mixture is not None
+    exact = (fit.compliance[sample] == 0) & mixture.linked
+    # Combinations stand where readings do; those of the linked ones have no other readings.
+    part = np.abs(mixture.vectors[sample][:, exact]).max(axis=1)
+    named = fit.stiff[(part > 1e-6) & mixture.linked].tolist()
+    subjects = tuple(account.readings.subjects[row] for row in named)
+    return Fault(
+        "fully-correlated-readings",
+        subjects[0],
+        "the errors of {readings} are correlated so fully that a combination of these readings has"
+        " none, such as their sum; and the account has another value of that combination. Give"
+        " them a part of their own ('u' beside 'u_shared', a coefficient within -1 and 1), correct"
+        " a value, or leave one of them out",
+        {"readings": Readings(subjects)},
+    )
 
 
 def not_converged(account: Account) -> Fault:

@@ -20,6 +20,7 @@ from scipy.optimize import least_squares
 
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.monte_carlo import Sampling, monte_carlo
 from core.outlet_analysis.readings import Series
 from core.outlet_analysis.reconciliation import estimate
 from tests.benchmark._interleave import medians
@@ -191,11 +192,17 @@ def run() -> list[tuple[str, float, float] | tuple[str, float, float, str]]:
     def one_with_results() -> None:
         conversion_results(estimate(base))
 
+    found = estimate(base)
+
+    def draws() -> None:
+        monte_carlo(found, Sampling(10_000, 1))
+
     by_differences, in_series = medians(differences, whole_series, times=7)
     by_design, in_series_too = medians(differences_from_design, whole_series, times=7)
     by_slopes, in_series_again = medians(written_out, whole_series, times=7)
     by_differences_one, single = medians(differences, one, times=7)
     by_differences_all, everything = medians(differences, one_with_results, times=7)
+    by_differences_once, drawn = medians(differences, draws, times=5)
     each = len(few)
     memory, above = long_series()
     return [
@@ -204,6 +211,7 @@ def run() -> list[tuple[str, float, float] | tuple[str, float, float, str]]:
         ("series, to lm with Jacobian", by_slopes / each * SAMPLES / in_series_again, 14.0),
         ("one sample, to trf by differences", by_differences_one / each / single, 1.5),
         ("one with closures, to trf by differences", by_differences_all / each / everything, 0.8),
+        ("10,000 draws, in fits by trf", drawn / (by_differences_once / each), 60.0, "max"),
         ("series, thousand samples a second", SAMPLES / in_series / 1000, 30.0),
         ("MiB of a process, 100,000 samples", memory, 200.0, "max"),
         ("5 % above the 95 % limit, off by %", abs(above - 5), 1.0, "max"),

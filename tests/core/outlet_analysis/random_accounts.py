@@ -15,6 +15,7 @@ import numpy as np
 
 from core.constants import GAS_CONSTANT
 from core.outlet_analysis.account import AccountProblem, Unknown
+from core.outlet_analysis.correlations import Correlation
 from core.outlet_analysis.readings import ABOVE, BELOW, Series
 from core.reactions.reaction_set import Reaction, ReactionSet
 from core.streams.metered import (
@@ -544,7 +545,10 @@ def one_sample(problem: AccountProblem, k: int) -> AccountProblem:
             return reading
         kind = 0 if of.bound is None else int(of.bound[k])
         bound: Any = {0: None, BELOW: "below", ABOVE: "above"}[kind]
-        return Measurement(float(of.value[k]), float(of.u[k]), reading.subject, bound)
+        shared = tuple(
+            (name, float(np.ravel(part)[k % np.size(part)])) for name, part in of.shared.items()
+        )
+        return Measurement(float(of.value[k]), float(of.u[k]), reading.subject, bound, shared)
 
     return mapped(problem, single)
 
@@ -608,3 +612,45 @@ def with_noise(
             read = np.full(samples, np.nan)
         series[subject] = Series(read, u, bound)
     return replace(problem, series=series)
+
+
+def random_correlations(rng: np.random.Generator, subjects: list[Place]) -> tuple[Correlation, ...]:
+    """Coefficients of a random correlation matrix over some of the readings."""
+    count = int(rng.integers(2, min(7, len(subjects)) + 1))
+    chosen = [subjects[k] for k in rng.permutation(len(subjects))[:count]]
+    root = rng.standard_normal((count, count + int(rng.integers(0, 3))))
+    matrix = root @ root.T
+    size = np.sqrt(np.diag(matrix))
+    matrix /= size[:, None] * size
+    return tuple(
+        Correlation((chosen[i], chosen[j]), float(matrix[i, j]), ("correlations", i, j))
+        for i in range(count)
+        for j in range(i)
+    )
+
+
+def with_shared(rng: np.random.Generator, series: dict[Place, Series]) -> dict[Place, Series]:
+    """The same readings, some of them of two instruments with an error of their own."""
+    made = {}
+    for subject, of in series.items():
+        name = str(rng.choice(["AI-1", "AI-2", "none", "alone"]))
+        part = float(of.u[0] * rng.uniform(0.3, 2.0) * rng.choice([-1.0, 1.0]))
+        shared = {} if name == "none" else {subject if name == "alone" else name: part}
+        made[subject] = replace(of, shared=shared)
+    return made
+
+
+def covariance_of(problem: AccountProblem, subjects: tuple[Place, ...]) -> np.ndarray:
+    """The covariance of the readings, written from the definition."""
+    place = {subject: k for k, subject in enumerate(subjects)}
+    own = np.array([problem.series[s].u[0] for s in subjects])
+    matrix = np.diag(own**2)
+    for said in problem.correlations:
+        i, j = (place[s] for s in said.readings)
+        matrix[i, j] = matrix[j, i] = said.coefficient * own[i] * own[j]
+    for i, a in enumerate(subjects):
+        for j, b in enumerate(subjects):
+            for instrument, part in problem.series[a].shared.items():
+                other = problem.series[b].shared.get(instrument, 0.0)
+                matrix[i, j] += float(part) * float(other)
+    return matrix
