@@ -33,11 +33,16 @@ def most_refits(readings: int, unknowns: int, equations: int) -> int:
     return max(1, int(WORK_OF_REFITS / work(readings, unknowns, equations)))
 
 
-def over_budget(readings: Readings, unknowns: int, subject: Subject) -> Refused | None:
-    """Return the refusal ``compute-budget`` of an account that is too large, else None."""
+def over_budget(
+    readings: Readings, unknowns: int, further: int, subject: Subject
+) -> Refused | None:
+    """Return the refusal ``compute-budget`` of an account that is too large, else None.
+
+    ``further`` is how many equations the account has beside its exact readings.
+    """
     m = len(readings.subjects)
     small = readings.u <= NEARLY_EXACT * np.abs(readings.measured)
-    equations = int(np.count_nonzero(small.any(axis=0)))
+    equations = further + int(np.count_nonzero(small.any(axis=0)))
     within = unknowns <= MOST_UNKNOWNS and m <= MOST_READINGS
     if within and work(m, unknowns, equations) <= MOST_WORK:
         return None

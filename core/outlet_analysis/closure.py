@@ -15,7 +15,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Note
-from core.outlet_analysis.account import Account, release_outlet
+from core.outlet_analysis.account import Account, Around, release_around, release_outlet
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.preparation import BLOCK, prepare
@@ -45,8 +45,12 @@ class Closures:
     notes: tuple[Note, ...]
 
 
-def element_closures(found: Estimate) -> Closures:
-    """Return the element closures of the readings of an estimate with an outlet."""
+def element_closures(found: Estimate, around: Around = "reactor") -> Closures:
+    """Return the element closures of the readings of an estimate with an outlet.
+
+    With a recycle they are those ``around`` the reactor, or the whole that it
+    stands in: what leaves over what comes from outside.
+    """
     reactions = found.account.problem.reactions
     elements, atoms = element_matrix(reactions)
     single = found.account.readings.samples is None
@@ -64,11 +68,15 @@ def element_closures(found: Estimate) -> Closures:
         if absent.any():
             patterns, which = np.unique(absent, axis=0, return_inverse=True)
         for k, pattern in enumerate(patterns):
-            account = release_outlet(found.account, np.flatnonzero(pattern).tolist())
+            gone = np.flatnonzero(pattern).tolist()
+            if found.account.problem.recycle is None:
+                account = release_outlet(found.account, gone)
+            else:
+                account = release_around(found.account, around, gone)
             rows = np.flatnonzero(which.reshape(-1) == k)
             for first in range(0, len(rows), BLOCK):
                 of.fill(account, atoms, rows[first : first + BLOCK], found.first)
-    notes = _notes(found.account, elements, atoms, of, opaque)
+    notes = _notes(found.account, elements, atoms, of, opaque, around)
     into, out, ratio = (
         Uncertain(value[0], u[0]) if single else Uncertain(value, u)
         for value, u in ((of.values[name], of.spread[name]) for name in ("into", "out", "ratio"))
@@ -126,15 +134,17 @@ def _notes(
     atoms: FloatArray,
     of: _Closures,
     opaque: list[int],
+    around: Around,
 ) -> list[Note]:
     names = account.problem.reactions.names
+    closure, place = ("closure", ()) if around == "reactor" else ("overall closure", ("overall",))
     if opaque:
         return [
             Note(
                 "closure-opaque",
-                "no element closure is given: the atoms of {substances} are not known; declare"
-                " a formula to have it",
-                subject=("closure",),
+                f"no element {closure} is given: the atoms of {{substances}} are not known;"
+                " declare a formula to have it",
+                subject=(*place, "closure"),
                 facts={"substances": ", ".join(names[i] for i in opaque)},
             )
         ]
@@ -153,9 +163,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-not-read",
-                    "the closure of {element} cannot be formed from the readings alone, which"
+                    f"the {closure} of {{element}} cannot be formed from the readings alone, which"
                     " do not tell the flow of {substances}" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, "substances": " and ".join(where), **facts},
                 )
             )
@@ -163,9 +173,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-by-tie",
-                    "the closure of {element} says nothing: no meter tells how much leaves, and"
-                    " the inert substances that hold it were used to tell",
-                    subject=("closure", element),
+                    f"the {closure} of {{element}} says nothing: no meter tells how much leaves,"
+                    " and the inert substances that hold it were used to tell",
+                    subject=(*place, "closure", element),
                     facts={"element": element},
                 )
             )
@@ -174,9 +184,9 @@ def _notes(
             notes.append(
                 Note(
                     "denominator-near-zero",
-                    "no closure of {element} is given: what is fed of it is within twice its"
+                    f"no {closure} of {{element}} is given: what is fed of it is within twice its"
                     " uncertainty of zero, or of what rounding leaves" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, **facts},
                 )
             )
@@ -185,9 +195,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-not-read",
-                    "the closure of {element} is not given: from the readings alone, feed and"
+                    f"the {closure} of {{element}} is not given: from the readings alone, feed and"
                     " outlet unconnected, no account was found" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, **facts},
                 )
             )

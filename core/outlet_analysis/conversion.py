@@ -54,6 +54,29 @@ class Yields:
 
 
 @dataclass(frozen=True, eq=False)
+class Overall:
+    """What an account says of a reactor with recycle and all around it.
+
+    Attributes
+    ----------
+    conversion : Uncertain, shape (...)
+        (fresh - leaving in purge and products)/fresh of the key.
+    yields : Uncertain, shape (..., P)
+        s_P (leaving - fresh of P)/fresh of the key, of the products that
+        :class:`Yields` names. Selectivities are those of the reactor, as what
+        is made and used up is the same.
+    recycle_ratio : Uncertain, shape (...)
+        Moles returned to the reactor inlet over moles leaving.
+    closures : Closures or None
+    """
+
+    conversion: Uncertain
+    yields: Uncertain
+    recycle_ratio: Uncertain
+    closures: Closures | None
+
+
+@dataclass(frozen=True, eq=False)
 class ConversionResults:
     """What an account says of the reactor; a ratio is not a number where it has no meaning.
 
@@ -71,6 +94,8 @@ class ConversionResults:
     without_suspects : tuple of (removed readings, conversion)
         For each way to leave out one reading of every suspect set.
     notes : tuple of Note
+    overall : Overall or None
+        With a recycle.
     """
 
     conversion: Uncertain
@@ -81,6 +106,7 @@ class ConversionResults:
     closures: Closures | None
     without_suspects: tuple[tuple[tuple[int, ...], Uncertain], ...]
     notes: tuple[Note, ...]
+    overall: Overall | None = None
 
 
 def conversion_results(
@@ -170,11 +196,40 @@ def conversion_results(
             for way in found.without_suspects
         ),
         notes=(),
+        overall=None if problem.recycle is None else _overall(found, made, nowhere, whole=closures),
     )
     notes += _null_notes(found, results)
-    if results.closures is not None:
-        notes += results.closures.notes
+    for of in (results.closures, results.overall.closures if results.overall else None):
+        if of is not None:
+            notes += of.notes
     return ConversionResults(**{**vars(results), "notes": tuple(notes)})
+
+
+def _overall(found: Estimate, made: FloatArray, nowhere: BoolArray, *, whole: bool) -> Overall:
+    """Return the ratios of what leaves to what comes from outside.
+
+    ``made`` are the products made as key, shape (P, n); ``nowhere`` those without
+    a factor. ``whole`` asks for element closures.
+    """
+    account = found.account
+    fresh, leaving = account.fresh_map, account.leaving_map
+    key = account.problem.key
+    numerators = [(fresh - leaving)[[key]], made, account.returned_map.sum(axis=0)[None]]
+    per_key = np.broadcast_to(fresh[key], (1 + len(made), fresh.shape[1]))
+    of = ratios(
+        found.z,
+        found.covariance,
+        np.concatenate(numerators),
+        np.concatenate([per_key, leaving.sum(axis=0)[None]]),
+        account.largest_flow(found.z),
+    )
+    hidden = np.where(nowhere, np.nan, 1.0)
+    return Overall(
+        _first(of),
+        Uncertain(of.value[..., 1:-1] * hidden, of.u[..., 1:-1] * hidden),
+        Uncertain(of.value[..., -1], of.u[..., -1]),
+        element_closures(found, "whole") if whole else None,
+    )
 
 
 def _first(of: Uncertain) -> Uncertain:
@@ -339,6 +394,24 @@ def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
         "conversion",
         severity="warning",
     )
+    if results.overall is not None:
+        remark(
+            estimated & np.isnan(results.overall.conversion.value),
+            "denominator-near-zero",
+            "no overall conversion or yield is given: the flow of {key} in the fresh feed is"
+            " within twice its uncertainty of zero, or of what rounding leaves",
+            "overall",
+            severity="warning",
+        )
+        remark(
+            estimated & np.isnan(results.overall.recycle_ratio.value),
+            "denominator-near-zero",
+            "no recycle ratio is given: what leaves is within twice its uncertainty of zero, or of"
+            " what rounding leaves",
+            "overall",
+            severity="warning",
+            named={},
+        )
     of = results.yields
     lost = np.isnan(of.selectivities.value) & ~np.isnan(of.factors)
     remark(

@@ -438,7 +438,7 @@ def covariance_at(
     """
     rest = _rest(fit, z, natural)
     n = z.shape[1]
-    known = rest.inverse[:, :n, :n].diagonal(axis1=1, axis2=2) < SINGULAR
+    known = np.abs(rest.inverse[:, :n, :n].diagonal(axis1=1, axis2=2)) < SINGULAR
     covariance, step = rest.covariance, rest.size * rest.step[:, :n]
     if not known.all():
         covariance, step = np.nan_to_num(covariance), np.nan_to_num(step)
@@ -450,7 +450,8 @@ def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     rest = _rest(fit, z, natural)
     slopes, covariance, inverse = rest.slopes, rest.covariance, rest.inverse
     n, c = z.shape[1], len(fit.stiff)
-    inflation = inverse[:, :n, :n].diagonal(axis1=1, axis2=2).max(axis=-1, initial=0.0)
+    # Of a matrix next to singular, with equations in it, what should be large may come out below 0.
+    inflation = np.abs(inverse[:, :n, :n].diagonal(axis1=1, axis2=2)).max(axis=-1, initial=0.0)
     inflation = np.where(np.isnan(inflation), np.inf, inflation)
     variance = ((slopes @ covariance) * slopes).sum(axis=-1)
     redundancy = np.where(fit.weight > 0, 1 - fit.weight * variance, 0.0)

@@ -17,7 +17,7 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fact, Fault, Readings, Subject
-from core.outlet_analysis.account import Account, fed_in, listed
+from core.outlet_analysis.account import Account, describe_stream, fed_in, listed
 from core.outlet_analysis.budget import WORK_OF_SETTLING
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import IntArray
@@ -26,7 +26,6 @@ from core.outlet_analysis.readings import (
     FURTHER,
     VOLUME,
     ReadingWriter,
-    describe_stream,
 )
 from core.streams.metered import Analysis, Basis, FlowKind, FlowReading, Measurement
 
@@ -47,6 +46,8 @@ FLOW_WORDS: dict[bool, dict[FlowKind, str]] = {
     True: {"amount": "amount", "mass": "mass", "volume": "volume"},
 }
 """What is metered of a flow, and of a batch."""
+FEED_WORDS = {False: "feed", True: "fresh feed"}
+"""What comes from outside is called, without a recycle and with one."""
 
 
 def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatArray) -> FloatArray:
@@ -58,7 +59,10 @@ def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatA
     found = forms.at(z)
     rows = forms.jacobian(found) * natural[:, None, :]
     length = np.sqrt((rows * rows).sum(axis=-1))
-    counted = np.sqrt((natural * natural) @ (forms.numerators * forms.numerators).T)
+    if forms.split is None:
+        counted = np.sqrt((natural * natural) @ (forms.numerators * forms.numerators).T)
+    else:
+        counted = np.linalg.norm(found.numerators * natural[:, None, :], axis=-1)
     usable = active & (length > CANCELLED * np.abs(found.product) * counted) & (length > 0)
     scaled: FloatArray = rows * np.where(usable, 1 / np.where(usable, length, 1.0), 0.0)[..., None]
     return scaled
@@ -128,7 +132,7 @@ def taken_as_absent(
         return none
     substances = {account.unknowns[column].index for column in columns.tolist()}
     others = np.array([i not in substances for i in range(len(inert))])
-    kept = [account.feed_map[others]]
+    kept = [account.feed_map[others], account.fresh_map[others], account.returned_map[others]]
     if problem.outlet:
         key = problem.key
         slope = _conversion_slope(account.feed_map[key], account.outlet_map[key], z)
@@ -136,7 +140,7 @@ def taken_as_absent(
     if touched(np.concatenate(kept), natural, directions).any():
         return none
     rest = without_columns(directions, columns)
-    flows = np.concatenate([account.feed_map, account.outlet_map])
+    flows = np.concatenate([account.feed_map, account.outlet_map, account.returned_map])
     return none if touched(flows, natural, rest).any() else columns
 
 
@@ -212,7 +216,7 @@ def under_determined(
     directions = open_directions(scaled)
     words: list[str] = []
     fed, left = account.feed_map, account.outlet_map
-    reported = [fed]
+    reported, where = [fed], [(fed, "fed")]
     if account.problem.outlet:
         converted = _conversion_slope(fed[key], left[key], z)
         if touched(converted[None], natural, directions)[0]:
@@ -223,10 +227,22 @@ def under_determined(
             for j in np.flatnonzero(of_extents)
         ]
         reported += [left, account.extent_map]
-    for forms, where in ((fed, "fed"), (left, "leaving")):
+        where.append((left, "leaving"))
+    if account.problem.recycle is not None:
+        into, out = account.fresh_map[key], account.leaving_map[key]
+        if touched(_conversion_slope(into, out, z)[None], natural, directions)[0]:
+            words.insert(0, f"the overall conversion of {names[key]}")
+        reported += [account.fresh_map, account.returned_map]
+        where = [
+            (account.fresh_map, "in the fresh feed"),
+            (account.returned_map, "in the recycle"),
+            (fed, "into the reactor"),
+            (left, "out of it"),
+        ]
+    for forms, place in where:
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
-            words.append(f"the {flow} of {listed(found)} {where}")
+            words.append(f"the {flow} of {listed(found)} {place}")
     subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
     if not words:
         return Fault(
@@ -249,11 +265,11 @@ def under_determined(
     open_flows = touched(account.stream_map, natural, directions)
     for k, (g, i) in enumerate(_removed_from_feed(account)):
         if open_flows[g * len(names) + i]:
-            where = describe_stream(account.streams, len(account.problem.feed), g)
+            stream = describe_stream(account.problem, g)
             facts[f"removed_{k}"] = names[i]
             detail += (
-                f". {{removed_{k}}} is removed from the sample of {where}, and no reading tells its"
-                f" {flow}"
+                f". {{removed_{k}}} is removed from the sample of {stream}, and no reading tells"
+                f" its {flow}"
             )
     if missing:
         detail += ". Missing here: {missing}"
@@ -276,7 +292,7 @@ def _candidates(account: Account, z: FloatArray, natural: FloatArray) -> list[_C
     forms = _Further(account)
     for g in range(len(account.streams)):
         forms.of_stream(g)
-    written = forms.writer.forms().through(account.stream_map)
+    written = account.over_unknowns(forms.writer.forms())
     scaled = equilibrated(written, z[None], np.ones((1, len(forms.words)), bool), natural[None])[0]
     told = scaled.any(axis=1)
     return [
@@ -310,9 +326,9 @@ class _Further:
         A stream states the flows of its substances, or an analysis with or
         without its total flow.
         """
-        stream, count = self.streams[g], len(self.names)
-        where = describe_stream(self.streams, self.feeds, g)
-        rows = self.account.stream_map[g * count : (g + 1) * count]
+        stream = self.streams[g]
+        where = describe_stream(self.account.problem, g)
+        rows = self.account.stream_forms(g, np.ones(len(self.account.unknowns)))
         carried = np.flatnonzero(np.any(rows != 0, axis=1)).tolist()
         by_substance = {f.substance for f in stream.flows if f.substance is not None}
         if stream.analysis is not None or not by_substance:
@@ -329,7 +345,7 @@ class _Further:
                     self._flow(g, FlowReading("amount", BLANK, substance=removal.substance))
                     self.note(
                         f"the {self.flow_words['amount']} of {self.names[removal.substance]}, as a"
-                        " feed stream of its own"
+                        f" {FEED_WORDS[self.account.problem.recycle is not None]} stream of its own"
                     )
         self._volume(g, where)
 

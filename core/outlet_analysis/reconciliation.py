@@ -34,7 +34,7 @@ from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
-from core.outlet_analysis.solving import Fitted, fit_block, open_at
+from core.outlet_analysis.solving import Fitted, fit_block, open_at, still_open
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
 
@@ -87,7 +87,10 @@ def estimates(problem: AccountProblem) -> Iterator[Estimate]:
 def _reported(account: Account) -> FloatArray:
     if not account.problem.outlet:
         return account.feed_map
-    return np.concatenate([account.feed_map, account.outlet_map, account.extent_map])
+    flows = [account.feed_map, account.outlet_map, account.extent_map]
+    if account.problem.recycle is not None:
+        flows += [account.fresh_map, account.returned_map]
+    return np.concatenate(flows)
 
 
 def _estimate_block(account: Account, rows: slice) -> Estimate:
@@ -118,7 +121,10 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.hide(at, unknown[:, :m])
         if len(outcome.absent):
             out.leave_out(at, outcome.absent)
-        for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
+        singular = ~(seen.curvature.inflation < SINGULAR)
+        if account.split >= 0:
+            singular |= still_open(outcome, block.active[at])
+        for row in np.flatnonzero(singular).tolist():
             one = slice(row, row + 1)
             failed[int(at[row])] = open_at(
                 block, int(at[row]), outcome.z[one], outcome.natural[one]
@@ -143,7 +149,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.freedom > 0, chdtrc(np.maximum(out.freedom, 1), out.chi_square), np.nan
         ),
         inconsistent=(out.chi_square > out.limit) | out.contradicted.any(axis=1),
-        per_mole_of_key=block.active[:, m],
+        per_mole_of_key=block.active[:, -1],
         told=out.told,
         absent=out.absent,
         inflation=out.inflation,
@@ -177,7 +183,7 @@ def _stated(block: Block, fitted: Fitted) -> tuple[Stated, BoolArray]:
 
 
 def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> ReadingTable:
-    bound: NDArray[np.int8] = block.bound[:, :-1]
+    bound: NDArray[np.int8] = block.bound[:, : measured.shape[1]]
     there, limited = np.isfinite(measured), bound != 0
     redundancy = np.where(limited | ~there, np.nan, out.redundancy)
     checked = redundancy > 0

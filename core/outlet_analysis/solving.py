@@ -10,7 +10,6 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault
 from core.outlet_analysis.account import Account
-from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, IntArray, covariance_at, least_squares
 from core.outlet_analysis.observability import (
     equilibrated,
@@ -100,7 +99,7 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         )
         label = label.reshape(-1)
     forms = group.fit.forms.samples(first)
-    scaled = equilibrated(forms, group.start[first], active[first], group.natural[first])
+    scaled = equilibrated(forms, group.judged[first], active[first], group.natural[first])
     is_open = open_patterns(scaled)
     determined = ~is_open[label]
     n = len(block.account.unknowns)
@@ -117,7 +116,7 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         directions = open_directions(scaled[pattern])
         absent = told.absent
         if reported is not None and touched(reported, natural, directions).any():
-            absent = taken_as_absent(block.account, group.start[sample], natural, directions)
+            absent = taken_as_absent(block.account, group.judged[sample], natural, directions)
             if not len(absent):
                 yield group.rows[mine], _left_open(block, group, sample, directions)
                 continue
@@ -128,10 +127,15 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         at[:, open_.shape[1] :] = 0.0
         fit = _holding(group.fit.samples(mine), held, at)
         for outcome in _solved(block, group, mine, fit, _Held(open_ * natural[:, None], absent)):
-            if isinstance(outcome, Fitted) and len(absent):
+            if not len(absent):
+                yield outcome
+            elif isinstance(outcome, Fitted):
                 yield from _possible(block, group, outcome, directions)
             else:
-                yield outcome
+                # What was removed is there, or no account would be missing.
+                for row in outcome[0].tolist():
+                    at = int(np.flatnonzero(group.rows == row)[0])
+                    yield np.array([row]), _left_open(block, group, at, directions)
 
 
 @dataclass(frozen=True, eq=False)
@@ -186,18 +190,24 @@ def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault
     return under_determined(block.account, z[0], natural[0], scaled, missing, off_scale)
 
 
+def still_open(fitted: Fitted, active: BoolArray) -> BoolArray:
+    """Which samples leave something open where their fit came to rest, shape (len(rows),).
+
+    With a split among the unknowns slopes change from place to place, and
+    what is told at the first guess need not be told there. ``active`` says which readings
+    there are.
+    """
+    held = fitted.fit.measured.shape[1] - active.shape[1]
+    there = np.pad(active, ((0, 0), (0, held)), constant_values=True)
+    return open_patterns(equilibrated(fitted.fit.forms, fitted.z, there, fitted.natural))
+
+
 def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:
     """Add equations that keep the forms ``held`` (d, n) at the values ``at`` (N, d)."""
     d, forms = len(held), fit.forms
-    constants = forms.constants
     m, n = len(forms.numerators), len(at)
     return Fit(
-        Forms(
-            np.concatenate([constants, np.ones((*constants.shape[:-1], d))], axis=-1),
-            np.concatenate([forms.numerators, held]),
-            forms.bases,
-            np.concatenate([forms.exponents, np.zeros((d, forms.exponents.shape[1]))]),
-        ),
+        forms.beside(held),
         np.concatenate([fit.measured, at], axis=1),
         np.concatenate([fit.weight, np.zeros((n, d))], axis=1),
         np.concatenate([fit.stiff, np.arange(m, m + d)]),

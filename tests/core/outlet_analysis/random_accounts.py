@@ -74,56 +74,78 @@ def predicted(problem: AccountProblem, state: State) -> dict[tuple[str | int, ..
     masses = problem.reactions.molar_masses
     found: dict[tuple[str | int, ...], float] = {}
     for g, (stream, moles) in enumerate(zip((*problem.feed, *problem.outlet), flows, strict=True)):
-        volume, scale = volumes[g], state.scales[g]
-        per_mole = stream.compressibility * GAS_CONSTANT * state.temperatures[g]
-        per_mole /= state.pressures[g]
-        if stream.temperature is not None and stream.pressure is not None:
-            found[stream.temperature.subject] = state.temperatures[g]
-            found[stream.pressure.subject] = state.pressures[g]
-        sample = moles.copy()
-        analysis = stream.analysis
-        if analysis is not None and analysis.removed:
-            for removal in analysis.removed:
-                sample[removal.substance] = 0.0
-            rest = sample.sum()
-            residual = sum(r.residual for r in analysis.removed)
-            for removal in analysis.removed:
-                sample[removal.substance] = removal.residual * rest / (1 - residual)
-        for meter in stream.flows:
-            seen = sample if meter.as_analysed else moles
-            if meter.substance is not None:
-                seen = np.where(np.arange(len(seen)) == meter.substance, seen, 0.0)
-            if meter.kind == "mass":
-                value = float(seen @ masses)
-            elif meter.kind == "amount":
-                value = float(seen.sum())
-            elif stream.phase == "liquid":
-                value = volume
-            elif meter.molar_volume is not None:
-                value = float(seen.sum()) * meter.molar_volume
-            else:
-                value = float(seen.sum()) * per_mole
-            found[meter.measurement.subject] = value
-        if stream.density is not None:
-            found[stream.density.subject] = float(moles @ masses) / volume
-        if analysis is None:
-            continue
-        by_mass = analysis.basis in ("mass", "mass-concentration")
-        counted = sample * masses if by_mass else sample
-        peaks = [
-            sum(w * counted[i] for i, w in component.weights.items())
-            for component in analysis.components
-        ]
-        for component, peak in zip(analysis.components, peaks, strict=True):
-            if analysis.normalised:
-                value = scale * peak / sum(peaks)
-            elif analysis.basis in ("mole", "mass", "volume"):
-                value = peak / counted.sum()
-            elif stream.phase == "liquid":
-                value = peak / volume
-            else:
-                value = peak / (float(sample.sum()) * per_mole)
-            found[component.measurement.subject] = float(value)
+        found |= readings_of(
+            stream,
+            moles,
+            masses,
+            volumes[g],
+            state.scales[g],
+            state.temperatures[g],
+            state.pressures[g],
+        )
+    return found
+
+
+def readings_of(
+    stream: MeteredStream,
+    moles: np.ndarray,
+    masses: np.ndarray,
+    volume: float,
+    scale: float,
+    temperature: float,
+    pressure: float,
+) -> dict[tuple[str | int, ...], float]:
+    """Every reading of one stream in which these moles flow."""
+    found: dict[tuple[str | int, ...], float] = {}
+    per_mole = stream.compressibility * GAS_CONSTANT * temperature
+    per_mole /= pressure
+    if stream.temperature is not None and stream.pressure is not None:
+        found[stream.temperature.subject] = temperature
+        found[stream.pressure.subject] = pressure
+    sample = moles.copy()
+    analysis = stream.analysis
+    if analysis is not None and analysis.removed:
+        for removal in analysis.removed:
+            sample[removal.substance] = 0.0
+        rest = sample.sum()
+        residual = sum(r.residual for r in analysis.removed)
+        for removal in analysis.removed:
+            sample[removal.substance] = removal.residual * rest / (1 - residual)
+    for meter in stream.flows:
+        seen = sample if meter.as_analysed else moles
+        if meter.substance is not None:
+            seen = np.where(np.arange(len(seen)) == meter.substance, seen, 0.0)
+        if meter.kind == "mass":
+            value = float(seen @ masses)
+        elif meter.kind == "amount":
+            value = float(seen.sum())
+        elif stream.phase == "liquid":
+            value = volume
+        elif meter.molar_volume is not None:
+            value = float(seen.sum()) * meter.molar_volume
+        else:
+            value = float(seen.sum()) * per_mole
+        found[meter.measurement.subject] = value
+    if stream.density is not None:
+        found[stream.density.subject] = float(moles @ masses) / volume
+    if analysis is None:
+        return found
+    by_mass = analysis.basis in ("mass", "mass-concentration")
+    counted = sample * masses if by_mass else sample
+    peaks = [
+        sum(w * counted[i] for i, w in component.weights.items())
+        for component in analysis.components
+    ]
+    for component, peak in zip(analysis.components, peaks, strict=True):
+        if analysis.normalised:
+            value = scale * peak / sum(peaks)
+        elif analysis.basis in ("mole", "mass", "volume"):
+            value = peak / counted.sum()
+        elif stream.phase == "liquid":
+            value = peak / volume
+        else:
+            value = peak / (float(sample.sum()) * per_mole)
+        found[component.measurement.subject] = float(value)
     return found
 
 
@@ -144,14 +166,14 @@ def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
         flows = np.zeros(substances)
         flows[present] = rng.uniform(0.2, 10.0, len(present))
         true_feed.append(flows)
-        streams.append(_metered(rng, side, liquid, present, blank))
+        streams.append(metered_stream(rng, side, liquid, present, blank))
     room = sum(true_feed) + 0.0
     extents = np.zeros(len(reactions.nu))
     for j, row in enumerate(reactions.nu):
         left = room + extents @ reactions.nu
         limits = [left[i] / -row[i] for i in np.flatnonzero(row < 0)]
         extents[j] = rng.uniform(0.1, 0.6) * max(0.0, min(limits))
-    outlet = _metered(rng, "outlet", liquid, np.arange(substances), blank, outlet=True)
+    outlet = metered_stream(rng, "outlet", liquid, np.arange(substances), blank, outlet=True)
     problem = AccountProblem(reactions, 0, tuple(streams), (outlet,))
     count = feeds + 1
     state = State(
@@ -165,7 +187,7 @@ def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
     return problem, state
 
 
-def _metered(
+def metered_stream(
     rng: np.random.Generator,
     side: str,
     liquid: bool,
