@@ -496,6 +496,18 @@ def _check(problem: AccountProblem) -> None:
             key=name,
         )
 
+    recycle = problem.recycle
+    if recycle is None or recycle.purge is None:
+        return
+    read = [reading.measurement for reading in recycle.returned.flows]
+    if read and all(of.value == 0 and of.subject not in problem.series for of in read):
+        raise refuse(
+            "no-flow",
+            recycle.returned.subject,
+            "found no flow in the recycle, and a purge is split off what is returned and has its"
+            " composition; with nothing returned state what leaves as 'product', without 'purge'",
+        )
+
 
 def fed_in(stream: MeteredStream) -> frozenset[int]:
     """Return what a feed stream may hold."""
@@ -514,7 +526,7 @@ def _places(
     found = _where(writer, streams, reachable)
     stuck = [i for i, where in found.items() if not where and _may_occur(problem, i)]
     if stuck and connected:
-        raise _nowhere(problem, ("outlet",), "no outlet stream", stuck)
+        raise _nowhere(problem, ("outlet",), "no outlet stream can", stuck)
     return found
 
 
@@ -537,7 +549,7 @@ def _nowhere(problem: AccountProblem, subject: Subject, which: str, stuck: list[
     return refuse(
         "nowhere-to-leave",
         subject,
-        which + " can hold {substances}, and the account has it, fed or made. Name it"
+        which + " hold {substances}, and the account has it, fed or made. Name it"
         " in the analysis of the stream in which it leaves, leave the analysis of that stream"
         " open (no balance, and values that do not sum to 100 %), or add the stream",
         substances=listed([problem.reactions.names[i] for i in stuck]),
@@ -753,7 +765,12 @@ class _Around:
         stuck = [i for i in stuck if _may_occur(problem, i)]
         if stuck:
             subject: Subject = ("purge",) if not recycle.products else ("product",)
-            raise _nowhere(problem, subject, "neither purge nor product, where they are,", stuck)
+            which = (
+                ("neither purge nor product can" if purge >= 0 else "no product stream can")
+                if recycle.products
+                else "the purge is all that leaves, and it cannot"
+            )
+            raise _nowhere(problem, subject, which, stuck)
 
     def _leave(
         self,

@@ -14,8 +14,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Note
-from core.outlet_analysis.account import Account, Around, release_around, release_outlet
+from core.errors import Note, Subject
+from core.outlet_analysis.account import (
+    Account,
+    AccountProblem,
+    Around,
+    release_around,
+    release_outlet,
+)
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.preparation import BLOCK, prepare
@@ -62,7 +68,8 @@ def element_closures(found: Estimate, around: Around = "reactor") -> Closures:
         for i, substance in enumerate(reactions.substances)
         if substance.formula is None and flowing[i]
     ]
-    if elements and not opaque:
+    silent = _silent(found.account.problem, around)
+    if elements and not opaque and not silent:
         # What was taken as absent from the feed is so here; mostly that is nothing at all.
         patterns, which = absent[:1], np.zeros(len(absent), dtype=np.intp)
         if absent.any():
@@ -76,12 +83,36 @@ def element_closures(found: Estimate, around: Around = "reactor") -> Closures:
             rows = np.flatnonzero(which.reshape(-1) == k)
             for first in range(0, len(rows), BLOCK):
                 of.fill(account, atoms, rows[first : first + BLOCK], found.first)
-    notes = _notes(found.account, elements, atoms, of, opaque, around)
+    notes = (
+        [silent]
+        if silent is not None
+        else _notes(found.account, elements, atoms, of, opaque, around)
+    )
     into, out, ratio = (
         Uncertain(value[0], u[0]) if single else Uncertain(value, u)
         for value, u in ((of.values[name], of.spread[name]) for name in ("into", "out", "ratio"))
     )
     return Closures(elements, into, out, ratio, tuple(notes))
+
+
+def _silent(problem: AccountProblem, around: Around) -> Note | None:
+    """Return what to say where no stream out of a part with recycle has any reading."""
+    recycle = problem.recycle
+    if recycle is None:
+        return None
+    streams, place = problem.outlet, "out of the reactor, in 'outlet',"
+    closure: Subject = ("closure",)
+    if around == "whole":
+        purge = () if recycle.purge is None else (recycle.purge,)
+        streams, place = (*recycle.products, *purge), "that leaves, in 'product' and 'purge',"
+        closure = ("overall", "closure")
+    if any(stream.flows or stream.analysis is not None for stream in streams):
+        return None
+    return Note(
+        "closure-not-read",
+        f"no element closure around the {around} is given: nothing {place} is read",
+        subject=closure,
+    )
 
 
 class _Closures:

@@ -68,12 +68,15 @@ class Overall:
     recycle_ratio : Uncertain, shape (...)
         Moles returned to the reactor inlet over moles leaving.
     closures : Closures or None
+    without_suspects : tuple of Uncertain
+        The overall conversion in each way of ``found.without_suspects``.
     """
 
     conversion: Uncertain
     yields: Uncertain
     recycle_ratio: Uncertain
     closures: Closures | None
+    without_suspects: tuple[Uncertain, ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -181,18 +184,7 @@ def conversion_results(
         ),
         closures=element_closures(found) if closures else None,
         without_suspects=tuple(
-            (
-                way.removed,
-                _first(
-                    ratios(
-                        way.z,
-                        way.covariance,
-                        (fed - left)[None],
-                        fed[None],
-                        account.largest_flow(way.z),
-                    )
-                ),
-            )
+            (way.removed, _converted(account, fed, left, way.z, way.covariance))
             for way in found.without_suspects
         ),
         notes=(),
@@ -229,7 +221,19 @@ def _overall(found: Estimate, made: FloatArray, nowhere: BoolArray, *, whole: bo
         Uncertain(of.value[..., 1:-1] * hidden, of.u[..., 1:-1] * hidden),
         Uncertain(of.value[..., -1], of.u[..., -1]),
         element_closures(found, "whole") if whole else None,
+        tuple(
+            _converted(account, fresh[key], leaving[key], way.z, way.covariance)
+            for way in found.without_suspects
+        ),
     )
+
+
+def _converted(
+    account: Account, into: FloatArray, out: FloatArray, z: FloatArray, covariance: FloatArray
+) -> Uncertain:
+    """Return (in - out)/in, of linear forms of shape (n,)."""
+    largest = account.largest_flow(z)
+    return _first(ratios(z, covariance, (into - out)[None], into[None], largest))
 
 
 def _first(of: Uncertain) -> Uncertain:

@@ -2,9 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -173,6 +173,21 @@ class Estimate:
         return np.where(told, self.account.stream_flows(g, self.z), np.nan)
 
     @property
+    def product_forms(self) -> FloatArray:
+        """Slopes of the flows in all products together; as :meth:`stream_forms`."""
+        account = self.account
+        if account.purge is None:
+            return account.leaving_map
+        return np.asarray(account.leaving_map - self.stream_forms(account.purge))
+
+    @property
+    def product_flows(self) -> FloatArray:
+        """Flows in all products together, shape (..., S); as :meth:`stream_flows`."""
+        account = self.account
+        leaving = self.z @ account.leaving_map.T
+        return leaving if account.purge is None else leaving - self.stream_flows(account.purge)
+
+    @property
     def extents(self) -> FloatArray:
         """Extents of the reactions, shape (..., R), mol/s (batch: mol).
 
@@ -190,8 +205,8 @@ class Estimate:
         variance = ((forms @ self.covariance) * forms).sum(axis=-1)
         return np.asarray(np.sqrt(np.maximum(variance, 0.0)))
 
-    def liquid_volume(self, side: Literal["feed", "outlet"]) -> FloatArray | None:
-        """Volumetric flow of the liquid streams of a side, shape (...), m3/s (batch: m3).
+    def liquid_volume(self, streams: Iterable[int]) -> FloatArray | None:
+        """Volumetric flow of the liquids among some streams, shape (...), m3/s (batch: m3).
 
         Not a number where the readings do not tell it; None where none of
         them speaks of it.
@@ -199,9 +214,7 @@ class Estimate:
         account = self.account
         first = len(account.streams) * len(account.problem.reactions.substances)
         rows = [
-            first + g * FURTHER + VOLUME
-            for g in (account.inlet if side == "feed" else account.outlet)
-            if account.streams[g].phase == "liquid"
+            first + g * FURTHER + VOLUME for g in streams if account.streams[g].phase == "liquid"
         ]
         forms = self.account.stream_map[rows]
         if not rows or not forms.any(axis=1).all():

@@ -167,12 +167,14 @@ def _placed(found: Estimate, streams: Sequence[int], leaving: FloatArray) -> Not
     named = tuple(stream.subject for stream in outlets if stream.present is not None)
     facts: dict[str, Fact] = {}
     words = []
+    side = "outlet" if streams[0] in account.outlet else "product"
+    leave, leaves = ("leave", "leaves") if side == "outlet" else ("be", "is")
     if free:
         facts["free"] = Readings(free)
-        words.append("anything that the phase can carry may leave in {free}")
+        words.append(f"anything that the phase can carry may {leave} in {{free}}")
     if named:
         facts["named"] = Readings(named)
-        words.append("only what is named there leaves in {named}")
+        words.append(f"only what is named there {leaves} in {{named}}")
     detail = ", and ".join(words)
     for q, (g, stream) in enumerate(zip(streams, outlets, strict=True)):
         by_difference = stream.present is None and g in (*account.outlet, *account.products)
@@ -184,7 +186,6 @@ def _placed(found: Estimate, streams: Sequence[int], leaving: FloatArray) -> Not
                 f" {{stream_{q}}}: {{shares_{q}}}; state the phase of what cannot be there, or"
                 " complete the analysis"
             )
-    side = "outlet" if streams[0] in account.outlet else "product"
     return Note("outlet-placement", detail, subject=(side,), facts=facts)
 
 
