@@ -415,6 +415,12 @@ def _generic(place: str) -> str:
         "smallest_conversion",
         "key_mole_fraction",
         "without_suspect",
+        "overall",
+        "fresh_feed",
+        "recycle",
+        "purge",
+        "product",
+        "recycle_ratio",
     }
     return "/".join(p if p in keep else "?" for p in place.split("/"))
 
@@ -509,7 +515,13 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
             broken += stream_faults(result[place], place)
     for state in result.get("states", ()):
         broken += stream_faults(state["outlet"], "states/outlet")
+    overall = result.get("overall", {})
+    for place in ("fresh_feed", "recycle", "purge", "product"):
+        if place in overall:
+            broken += stream_faults(overall[place], f"overall/{place}")
     if route == CONVERSION:
+        if ("recycle" in (document or {})) != bool(overall):
+            broken.append(("overall", str(sorted(overall))))
         x = result["conversion"]
         if x is not None and None in (x["value"], x["u"]):
             return broken  # told by the contract already
@@ -581,6 +593,8 @@ def _null_kind(path: str) -> str:
 
 def stream_faults(stream: Json, place: str) -> list[tuple[str, str]]:
     broken = []
+    if stream["total"] is None:
+        return broken  # what the readings leave open, with a note
     flows, fractions = [], []
     for name, said in stream["species"].items():
         flow = said.get("flow") or said.get("amount")
@@ -1176,7 +1190,74 @@ class Maker:
             return self.as_analysis(system, flows, u)
         return self.as_flows(system, flows, u), True
 
+    def around(
+        self, system: System, flows: dict[str, float], u: str | None, quiet: float
+    ) -> tuple[dict[str, Any], bool]:
+        """Return a stream around a reactor with recycle, perhaps of no more than its phase."""
+        if self.chance(quiet):
+            return {"phase": system.phase}, True
+        out = {n: f for n, f in flows.items() if f > 0 or self.chance(0.5)} or flows
+        stream, true = self.as_analysis(system, out, u)
+        if self.chance(0.4):
+            stream, true = self.as_flows(system, out, u), True
+        there = {n for n, f in flows.items() if f > 0}
+        return stream, true and there <= _named(stream) | set(self.removed(stream))
+
+    def removed(self, stream: Json) -> list[str]:
+        return [
+            gone if isinstance(gone, str) else gone["species"]
+            for gone in stream.get("analysis", {}).get("removed", ())
+        ]
+
+    def recycled(self) -> tuple[Json, float | None]:
+        """Return a conversion with recycle, and the conversion per pass where it is known."""
+        rnd = self.rnd
+        system, fed, leaving, _extents = self.account()
+        made = self.base(system)
+        u = rnd.choice([None, "rel", "abs", "zero", "tiny", "text"])
+        kind = rnd.choice(["both", "purge", "product"])
+        split = self.spread(1e-3, 10)
+        if kind == "purge":
+            returned = {n: f / split for n, f in leaving.items()}
+        else:
+            returned = {n: f * self.spread(0.01, 10) for n, f in leaving.items()}
+        most = min((f / returned[n] for n, f in leaving.items() if returned[n]), default=1.0)
+        if kind == "both":
+            split = most * rnd.random()
+        purge = {n: f * (split if kind != "product" else 0.0) for n, f in returned.items()}
+        product = {n: max(0.0, f - purge[n]) for n, f in leaving.items()}
+        inlet = {n: fed.get(n, 0.0) + f for n, f in returned.items()}
+        outlet = {n: leaving[n] + f for n, f in returned.items()}
+        made["fresh_feed"], true = self.side(system, fed, 0.3, u)
+        if _named(made["fresh_feed"]) != set(fed) or self.removed(made["fresh_feed"]):
+            true = False
+        flows = {"feed": inlet, "outlet": outlet, "recycle": returned}
+        if kind != "product":
+            flows["purge"] = purge
+        if kind != "purge":
+            flows["product"] = product
+        for name, of in flows.items():
+            made[name], told = self.around(system, of, u, 0.5 if name == "feed" else 0.3)
+            true = true and told
+        for name in made.keys() & {"feed", "outlet", "recycle"}:
+            self.conditions(made[name], 0.2)
+            true = true and not (made[name].get("volumetric_flow") and "temperature" in made[name])
+        if self.wild and self.chance(0.1):
+            made.pop(rnd.choice(["fresh_feed", "recycle", "feed", *(made.keys() & {"purge"})]))
+            true = False
+        if any("phase" in said for said in system.species.values()):
+            true = False  # what is of another phase travels only where it is read
+        if b"kg/h" in dumps(made) and u not in ("rel", "abs", "text"):
+            true = False  # molar masses to five digits are not exact enough for exact readings
+        truth = (inlet[system.key] - outlet[system.key]) / inlet[system.key]
+        if self.chance(0.3):
+            self.corrupt(made)
+            true = False
+        return made, truth if true else None
+
     def conversion(self) -> tuple[Json, float | None]:
+        if self.chance(0.25):
+            return self.recycled()
         system, fed, left, _extents = self.account()
         made = self.base(system)
         u = self.rnd.choice([None, "rel", "abs", "zero", "tiny", "text"])
@@ -1218,7 +1299,8 @@ class Maker:
         """Put one reading wrong: a gross error."""
         readings = [
             (holder, name)
-            for side in ("feed", "outlet")
+            for side in ("feed", "outlet", "fresh_feed", "recycle", "purge", "product")
+            if side in made
             for stream in made[side].get("streams", [made[side]])
             for holder in (stream.get("flows", {}), stream.get("analysis", {}).get("values", {}))
             for name in holder

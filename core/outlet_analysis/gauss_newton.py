@@ -407,6 +407,7 @@ class _Rest:
     step: FloatArray
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     found = fit.forms.at(z)
     slopes = fit.forms.jacobian(found)

@@ -36,6 +36,9 @@ SPLITS = (0.1, 0.001, 0.003, 0.01, 0.03, 0.3, 1.0, 3.0, 10.0, 100.0)
 LEAST_SPLIT = 1e-3
 """Size of a split next to nothing, for scaling."""
 HALVINGS = 40
+FAR = 10.0
+"""How many times a split or the largest flow may grow or fall from one first guess to the next."""
+TINY = 1e-300
 
 
 @dataclass(frozen=True, eq=False)
@@ -344,6 +347,8 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
         block.nominal,
         START_RIDGE,
     )
+    if block.account.split >= 0:
+        start = _not_far(block, start)
     start = _inside(block, start)
     judged = start if block.account.split < 0 else _meeting_equations(block.account, start)
     return Group(rows, fit, start, judged, natural_size(block.account, start), dependent)
@@ -366,6 +371,15 @@ def _inside(block: Block, start: FloatArray) -> FloatArray:
         return start
     share = np.where(low, (usual - least) / np.where(low, usual - base, 1.0), 1.0).min(axis=1)
     return _between(block, start, share)
+
+
+def _not_far(block: Block, start: FloatArray) -> FloatArray:
+    """Take the guess with a split held instead where the tangent there leads far away."""
+    account, near = block.account, block.near
+    change = start[:, account.split] / near[:, account.split]
+    size = account.largest_flow(start) / np.maximum(account.largest_flow(near), TINY)
+    far = ~((change > 1 / FAR) & (change < FAR) & (size < FAR))
+    return np.where(far[:, None], near, start)
 
 
 def _meeting_equations(account: Account, start: FloatArray) -> FloatArray:

@@ -123,7 +123,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.leave_out(at, outcome.absent)
         singular = ~(seen.curvature.inflation < SINGULAR)
         if account.split >= 0:
-            singular |= still_open(outcome, block.active[at])
+            singular |= still_open(account, outcome, block.active[at])
         for row in np.flatnonzero(singular).tolist():
             one = slice(row, row + 1)
             failed[int(at[row])] = open_at(

@@ -20,7 +20,14 @@ from core.outlet_analysis.observability import (
     under_determined,
     without_columns,
 )
-from core.outlet_analysis.preparation import AGREEMENT, Block, Group, conflict, groups
+from core.outlet_analysis.preparation import (
+    AGREEMENT,
+    Block,
+    Group,
+    conflict,
+    groups,
+    natural_size,
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -190,7 +197,7 @@ def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault
     return under_determined(block.account, z[0], natural[0], scaled, missing, off_scale)
 
 
-def still_open(fitted: Fitted, active: BoolArray) -> BoolArray:
+def still_open(account: Account, fitted: Fitted, active: BoolArray) -> BoolArray:
     """Which samples leave something open where their fit came to rest, shape (len(rows),).
 
     With a split among the unknowns slopes change from place to place, and
@@ -199,7 +206,8 @@ def still_open(fitted: Fitted, active: BoolArray) -> BoolArray:
     """
     held = fitted.fit.measured.shape[1] - active.shape[1]
     there = np.pad(active, ((0, 0), (0, held)), constant_values=True)
-    return open_patterns(equilibrated(fitted.fit.forms, fitted.z, there, fitted.natural))
+    natural = natural_size(account, fitted.z)
+    return open_patterns(equilibrated(fitted.fit.forms, fitted.z, there, natural))
 
 
 def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:
