@@ -35,6 +35,9 @@ CANCELLED = 1e-9
 """Slope of a reading, relative to that of what it counts, which is rounding alone."""
 TOUCHED = 1e-6
 """Part of an open direction that a quantity must take to be open itself."""
+SETTLED = 1e-8
+"""Part of what was open that further readings may leave: less than TOUCHED, since where a split is
+among the unknowns the slopes are others once there are values."""
 USEFUL = 1e-3
 """Part of its slope along what is open that a further reading must have to be worth making."""
 LARGEST_SET = 3
@@ -438,7 +441,7 @@ def _settling(
     def settles(rows: list[int]) -> bool:
         if not _can_be_stated(candidates[k] for k in rows):
             return False
-        return bool(np.linalg.norm(wanted @ left_open(rows)) <= 10 * TOUCHED * need)
+        return bool(np.linalg.norm(wanted @ left_open(rows)) <= SETTLED * need)
 
     found: list[tuple[str, ...]] = []
     for size in range(1, LARGEST_SET + 1):

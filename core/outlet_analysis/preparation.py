@@ -64,6 +64,8 @@ class Block:
     near : ndarray, shape (N, n)
         Where the readings are made linear for a first guess; other than
         ``nominal`` only where a split is among the unknowns.
+    others : ndarray, shape (N, k, n)
+        Where to start from where the first guess leads nowhere; k is 0 without a split.
     """
 
     account: Account
@@ -75,6 +77,7 @@ class Block:
     limit: FloatArray
     nominal: FloatArray
     near: FloatArray
+    others: FloatArray
 
     @property
     def exact(self) -> BoolArray:
@@ -104,6 +107,8 @@ class Group:
         Size of each unknown: that of the largest flow, or its own.
     dependent : ndarray of int
         Exact readings left out because the others imply them.
+    others : tuple of ndarray, shape (len(rows), n)
+        Where else to start from.
     """
 
     rows: IntArray
@@ -112,6 +117,7 @@ class Group:
     judged: FloatArray
     natural: FloatArray
     dependent: IntArray
+    others: tuple[FloatArray, ...]
 
 
 def prepare(account: Account, rows: slice | IntArray) -> Block:
@@ -148,10 +154,10 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
         forms = forms.beside(account.equations, account.split_equations)
     forms = forms.beside(account.feed_map[[account.problem.key]])
     nothing = np.empty(0)
-    block = Block(account, forms, measured, sigma, active, bound, limit, nothing, nothing)
+    block = Block(account, forms, measured, sigma, active, bound, limit, *[nothing] * 3)
     per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
     nominal = _nominal(block, per_mole)
-    block = replace(block, nominal=nominal, near=nominal)
+    block = replace(block, nominal=nominal, near=nominal, others=nominal[:, None][:, :0])
     return block if account.split < 0 else _split_guessed(block, per_mole)
 
 
@@ -193,6 +199,7 @@ def _split_guessed(block: Block, per_mole: FloatArray) -> Block:
     column = account.split
     best = np.full(len(nominal), np.inf)
     chosen, near = np.array(nominal), np.array(nominal)
+    others, misfits = [], []
     for split in (_metered_split(block, per_mole), *SPLITS):
         usual = np.array(nominal)
         usual[:, column] = split
@@ -216,10 +223,14 @@ def _split_guessed(block: Block, per_mole: FloatArray) -> Block:
         flows = account.every_flow(z)
         below = -np.minimum(flows, 0).sum(axis=1) / np.abs(flows).sum(axis=1)
         misfit = (1 + misfit) * (1 + 100 * below) ** 2
+        others.append(z)
+        misfits.append(misfit)
         better = misfit < best
         best = np.where(better, misfit, best)
         chosen[better], near[better] = usual[better], z[better]
-    return replace(block, nominal=chosen, near=near)
+    order = np.argsort(np.stack(misfits, axis=1), axis=1, kind="stable")
+    ranked = np.take_along_axis(np.stack(others, axis=1), order[:, :, None], axis=1)
+    return replace(block, nominal=chosen, near=near, others=ranked)
 
 
 def _metered_split(block: Block, per_mole: FloatArray) -> FloatArray:
@@ -311,6 +322,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
             block.limit[rows],
             block.nominal[rows],
             block.near[rows],
+            block.others[rows],
         )
     slopes, right, u = linearised(block)
     exact = np.flatnonzero(kind == 1)
@@ -350,8 +362,10 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
     if block.account.split >= 0:
         start = _not_far(block, start)
     start = _inside(block, start)
+    others = [_inside(block, block.others[:, k]) for k in range(block.others.shape[1])]
     judged = start if block.account.split < 0 else _meeting_equations(block.account, start)
-    return Group(rows, fit, start, judged, natural_size(block.account, start), dependent)
+    natural = natural_size(block.account, start)
+    return Group(rows, fit, start, judged, natural, dependent, tuple(others))
 
 
 def _weights(soft: BoolArray, u: FloatArray) -> FloatArray:

@@ -2,15 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.errors import Fault
 from core.outlet_analysis.account import Account
-from core.outlet_analysis.gauss_newton import Fit, IntArray, covariance_at, least_squares
+from core.outlet_analysis.gauss_newton import (
+    Fit,
+    IntArray,
+    Solution,
+    covariance_at,
+    least_squares,
+)
 from core.outlet_analysis.observability import (
     equilibrated,
     open_directions,
@@ -108,6 +114,10 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
     forms = group.fit.forms.samples(first)
     scaled = equilibrated(forms, group.judged[first], active[first], group.natural[first])
     is_open = open_patterns(scaled)
+    if block.account.split >= 0 and is_open.any():
+        group = _brought_near(block, group, label, first, scaled, is_open)
+        scaled = equilibrated(forms, group.judged[first], active[first], group.natural[first])
+        is_open = open_patterns(scaled)
     determined = ~is_open[label]
     n = len(block.account.unknowns)
     told = _Held(np.empty((n, 0)), np.empty(0, dtype=np.intp))
@@ -145,6 +155,32 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
                     yield np.array([row]), _left_open(block, group, at, directions)
 
 
+def _brought_near(
+    block: Block,
+    group: Group,
+    label: IntArray,
+    first: IntArray,
+    scaled: FloatArray,
+    is_open: BoolArray,
+) -> Group:
+    """Bring samples that seem to leave something open to where their readings are met.
+
+    With a split among the unknowns slopes change from place to place, and it is
+    there that what is open must be judged.
+    """
+    start, judged = np.array(group.start), np.array(group.judged)
+    natural = np.array(group.natural)
+    for pattern in np.flatnonzero(is_open).tolist():
+        mine = np.flatnonzero(label == pattern)
+        held = open_directions(scaled[pattern]).T / group.natural[first[pattern]]
+        fit = _holding(group.fit.samples(mine), held, start[mine] @ held.T)
+        found = least_squares(fit, start[mine], natural[mine])
+        there = mine[found.converged]
+        start[there] = judged[there] = found.z[found.converged]
+        natural[there] = natural_size(block.account, start[there])
+    return replace(group, start=start, judged=judged, natural=natural)
+
+
 @dataclass(frozen=True, eq=False)
 class _Held:
     """What is held in a fit: open directions (n, d) in the sizes of the unknowns, absent flows."""
@@ -180,7 +216,7 @@ def _possible(
 def _left_open(block: Block, group: Group, sample: int, directions: FloatArray) -> Fault:
     """Say what a sample of a group leaves open, looked at where its readings are met."""
     one = slice(sample, sample + 1)
-    fit, start, natural = group.fit.samples(one), group.start[one], group.natural[one]
+    fit, start, natural = group.fit.samples(one), group.judged[one], group.natural[one]
     forms = directions.T / natural
     held = least_squares(_holding(fit, forms, start @ forms.T), start, natural)
     return open_at(block, group.rows[sample], held.z if held.converged[0] else start, natural)
@@ -230,6 +266,8 @@ def _solved(
     if not mine.all():
         start, natural, rows = start[mine], natural[mine], rows[mine]
     solution = least_squares(fit, start, natural)
+    if group.others and not solution.converged.all():
+        solution = _started_anew(fit, solution, natural, [of[mine] for of in group.others])
     good = solution.converged
     if not good.all():
         yield rows[~good], not_converged(block.account)
@@ -253,6 +291,21 @@ def _solved(
         yield fitted
     elif agreed.any():
         yield fitted.samples(agreed)
+
+
+def _started_anew(
+    fit: Fit, solution: Solution, natural: FloatArray, others: Sequence[FloatArray]
+) -> Solution:
+    """Start the samples that came to no rest from elsewhere, one place after the other."""
+    z, converged = np.array(solution.z), np.array(solution.converged)
+    for start in others:
+        rows = np.flatnonzero(~converged)
+        if not len(rows):
+            break
+        found = least_squares(fit.samples(rows), start[rows], natural[rows])
+        z[rows[found.converged]] = found.z[found.converged]
+        converged[rows] = found.converged
+    return Solution(z, converged)
 
 
 def not_converged(account: Account) -> Fault:

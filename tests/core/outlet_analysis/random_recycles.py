@@ -27,7 +27,8 @@ class LoopState:
     is then what leaves over the split.
     """
 
-    fresh: list[np.ndarray]
+    feed: list[np.ndarray]
+    """Fresh."""
     extents: np.ndarray
     returned: np.ndarray
     split: float
@@ -40,14 +41,14 @@ def streams_of(problem: AccountProblem, state: LoopState) -> list[np.ndarray]:
     """Flows of every stream: fresh feeds, outlet, inlet, recycle, purge, product."""
     recycle = problem.recycle
     assert recycle is not None
-    fresh = sum(state.fresh)
+    fresh = sum(state.feed)
     leaving = fresh + state.extents @ problem.reactions.nu
     returned = state.returned
     if not recycle.products:
         returned = leaving / state.split
     inlet = fresh + returned
     outlet = inlet + state.extents @ problem.reactions.nu
-    found = [*state.fresh, outlet, inlet, returned]
+    found = [*state.feed, outlet, inlet, returned]
     rest = outlet - returned
     if recycle.purge is not None:
         found.append(state.split * returned)

@@ -22,12 +22,13 @@ from tests.core.outlet_analysis.plant import (
     reactions_of,
     shift_problem,
     stream_of,
+    with_streams,
 )
 
 
 def measurements(problem: AccountProblem) -> list[Measurement]:
     found = []
-    for stream in (*problem.feed, *problem.outlet):
+    for stream in problem.streams:
         found += [reading.measurement for reading in stream.flows]
         if stream.analysis is not None:
             found += [component.measurement for component in stream.analysis.components]
@@ -54,7 +55,7 @@ def one(problem: AccountProblem, k: int) -> AccountProblem:
         bound: Any = None if of.bound is None or not of.bound[k] else "below"
         return Measurement(float(of.value[k]), float(of.u[k]), reading.subject, bound)
 
-    def stream(of: Any) -> Any:
+    def stream(_: int, of: Any) -> Any:
         flows = tuple(replace(f, measurement=single(f.measurement)) for f in of.flows)
         analysis = of.analysis
         if analysis is not None:
@@ -64,12 +65,7 @@ def one(problem: AccountProblem, k: int) -> AccountProblem:
             analysis = replace(analysis, components=components)
         return replace(of, flows=flows, analysis=analysis)
 
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-        series={},
-    )
+    return replace(with_streams(problem, stream), series={})
 
 
 CO_OUT = ("outlet", "analysis", "values", "CO")

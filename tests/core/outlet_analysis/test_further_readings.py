@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import re
 from dataclasses import replace
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 import pytest
 
 from core.errors import Fault, Refused
-from core.outlet_analysis.account import AccountProblem
+from core.outlet_analysis.account import AccountProblem, describe_stream
 from core.outlet_analysis.reconciliation import estimate
 from core.streams.metered import (
     Analysis,
@@ -20,12 +20,23 @@ from core.streams.metered import (
     MeteredStream,
 )
 from core.substances.substance import Substance
-from tests.core.outlet_analysis.plant import account, analysis_of, reactions_of, stream_of
+from tests.core.outlet_analysis.plant import (
+    account,
+    analysis_of,
+    reactions_of,
+    stream_of,
+    with_streams,
+)
 from tests.core.outlet_analysis.random_accounts import State, predicted, random_problem
+from tests.core.outlet_analysis.random_recycles import (
+    LoopState,
+    predicted_around,
+    random_recycle,
+)
 
 NAMED = re.compile(
     r"the (?:fraction|concentration) of (?P<value>\S+) in (?:an|the) analysis of (?P<analysed>.+)"
-    r"|the flow of (?P<fed>\S+), as a feed stream of its own"
+    r"|the flow of (?P<fed>\S+), as a (?:fresh )?feed stream of its own"
     r"|the (?P<part>(?:mass )?flow) of (?P<partly>.+) as analysed"
     r"|the total (?P<kind>flow|mass flow|volumetric flow) of (?P<whole>.+)"
     r"|the density of (?P<dense>.+)"
@@ -36,9 +47,8 @@ NAMED = re.compile(
 KINDS: dict[str, Any] = {"flow": "amount", "mass flow": "mass", "volumetric flow": "volume"}
 
 
-def place(words: str) -> tuple[str, int]:
-    side, *number = words.removeprefix("the ").replace(" stream", "").split(" ")
-    return side, int(number[0]) - 1 if number else 0
+def place(problem: AccountProblem, words: str) -> int:
+    return [describe_stream(problem, g) for g in range(len(problem.streams))].index(words)
 
 
 def removes(stream: MeteredStream, substance: int) -> bool:
@@ -46,8 +56,13 @@ def removes(stream: MeteredStream, substance: int) -> bool:
     return any(r.substance == substance and r.residual == 0 for r in removed)
 
 
-def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
-    """The problem with the reading stated that the words suggest."""
+def with_reading(
+    problem: AccountProblem, words: str, asked: AccountProblem | None = None
+) -> AccountProblem:
+    """The problem with the reading stated that the words suggest.
+
+    They call the streams as those of the problem ``asked`` about.
+    """
     found = NAMED.fullmatch(words)
     assert found is not None, words
     of, new = found.groupdict(), Measurement(1.0, 0.01, ("new", words))
@@ -71,13 +86,13 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
         )
         return replace(problem, feed=(*feed, own))
     assert where is not None
-    side, q = place(where)
-    streams = list(getattr(problem, side))
-    stream = streams[q]
+    asked = asked or problem
+    subject = asked.streams[place(asked, where)].subject
+    (stream,) = (s for s in problem.streams if s.subject == subject)
     if of["value"]:
         component = Component({names.index(of["value"]): 1.0}, new)
         basis: Any = "mass" if stream.phase == "liquid" else "mole"
-        analysis = stream.analysis or Analysis(basis, (), (side, "analysis"))
+        analysis = stream.analysis or Analysis(basis, (), (*stream.subject, "analysis"))
         analysis = replace(analysis, components=(*analysis.components, component))
         # A stream states its flows or its analysis.
         assert not any(f.substance is not None for f in stream.flows) or stream.analysis
@@ -100,8 +115,7 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
         kind = KINDS[of["part"] or of["kind"]]
         meter = FlowReading(kind, new, as_analysed=of["partly"] is not None)
         changed = replace(stream, flows=(*stream.flows, meter))
-    streams[q] = changed
-    return replace(problem, **{side: tuple(streams)})
+    return with_streams(problem, lambda _, of: changed if of is stream else of)
 
 
 def measured(problem: AccountProblem, values: dict[Any, float]) -> AccountProblem:
@@ -113,7 +127,7 @@ def measured(problem: AccountProblem, values: dict[Any, float]) -> AccountProble
         value = values.get(of.subject, of.value)
         return Measurement(value, 0.01 * abs(value) + 1e-6, of.subject)
 
-    def stream(of: MeteredStream) -> MeteredStream:
+    def stream(_: int, of: MeteredStream) -> MeteredStream:
         analysis = of.analysis
         if analysis is not None:
             components = tuple(
@@ -129,18 +143,15 @@ def measured(problem: AccountProblem, values: dict[Any, float]) -> AccountProble
             density=read(of.density),
         )
 
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-    )
+    return with_streams(problem, stream)
 
 
 def thinned(rng: np.random.Generator, problem: AccountProblem) -> AccountProblem:
     """The problem with some of its readings gone, in a form that can be stated."""
 
-    def stream(of: MeteredStream) -> MeteredStream:
-        assert of.analysis is not None
+    def stream(_: int, of: MeteredStream) -> MeteredStream:
+        if of.analysis is None:
+            return of
         kept = [c for c in of.analysis.components if rng.random() < 0.6]
         analysis = replace(of.analysis, components=tuple(kept)) if kept else None
         if analysis is None:
@@ -149,11 +160,7 @@ def thinned(rng: np.random.Generator, problem: AccountProblem) -> AccountProblem
             flows = [f for f in of.flows if f.substance is None and rng.random() < 0.7][:1]
         return replace(of, analysis=analysis, flows=tuple(flows))
 
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-    )
+    return with_streams(problem, stream)
 
 
 def fault_of(problem: AccountProblem) -> Fault | None:
@@ -171,7 +178,10 @@ def suggestions(fault: Fault) -> list[list[str]]:
     return [option.split(" together with ") for option in further.split("; or ")]
 
 
-def split_off(state: State, substance: int, problem: AccountProblem) -> State:
+AnyState = TypeVar("AnyState", State, LoopState)
+
+
+def split_off(state: AnyState, substance: int, problem: AccountProblem) -> AnyState:
     """The same state with what is fed of a substance in a stream of its own."""
     feed = [
         np.where(np.arange(len(flows)) == substance, 0.0, flows)
@@ -179,44 +189,56 @@ def split_off(state: State, substance: int, problem: AccountProblem) -> State:
         else flows
         for stream, flows in zip(problem.feed, state.feed, strict=True)
     ]
-    own = sum(state.feed) - sum(feed)
+    own = np.sum(state.feed, axis=0) - np.sum(feed, axis=0)
     place = len(problem.feed)
 
     def more(of: list[float]) -> list[float]:
         return [*of[:place], 1.0, *of[place:]]
 
-    return replace(
+    changed = replace(
         state,
         feed=[*feed, own],
-        volumes=[*state.volumes, 0.0],
         scales=more(state.scales),
         temperatures=more(state.temperatures),
         pressures=more(state.pressures),
     )
+    if isinstance(changed, State):
+        changed.volumes.append(0.0)
+    return changed
 
 
-def settled(problem: AccountProblem, options: list[str], state: State | None = None) -> None:
+def readings_in(problem: AccountProblem, state: State | LoopState) -> dict[Any, float]:
+    if isinstance(state, LoopState):
+        return predicted_around(problem, state)
+    return predicted(problem, state)
+
+
+def settled(
+    problem: AccountProblem, options: list[str], state: State | LoopState | None = None
+) -> None:
+    asked = problem
     for words in options:
-        before, problem = problem, with_reading(problem, words)
+        before, problem = problem, with_reading(problem, words, asked)
         if state is not None:
             if len(problem.feed) > len(before.feed):
                 state = split_off(state, next(iter(problem.feed[-1].present or ())), before)
-            problem = measured(problem, predicted(problem, state))
+            problem = measured(problem, readings_in(problem, state))
     fault = fault_of(problem)
     assert fault is None or fault.code != "under-determined", options
     # With the values that are true of some state the account is found, too.
     assert fault is None or state is None, fault
 
 
-def test_every_suggestion_settles_a_random_account() -> None:
-    rng = np.random.default_rng(7)
+@pytest.mark.parametrize(("made", "seed"), [(random_problem, 7), (random_recycle, 8)])
+def test_every_suggestion_settles_a_random_account(made: Any, seed: int) -> None:
+    rng = np.random.default_rng(seed)
     refused = checked = 0
     while refused < 60:
-        problem, state = random_problem(rng)
+        problem, state = made(rng)
         if not state.extents.all():
             continue
         few = thinned(rng, problem)
-        few = measured(few, predicted(few, state))
+        few = measured(few, readings_in(few, state))
         fault = fault_of(few)
         if fault is None or fault.code != "under-determined":
             continue
