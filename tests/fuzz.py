@@ -1214,7 +1214,7 @@ class Maker:
         rnd = self.rnd
         system, fed, leaving, _extents = self.account()
         made = self.base(system)
-        u = rnd.choice([None, "rel", "abs", "zero", "tiny", "text"])
+        u = rnd.choice(["rel", "abs", "zero", "tiny", "text", "huge"])
         kind = rnd.choice(["both", "purge", "product"])
         split = self.spread(1e-3, 10)
         if kind == "purge":

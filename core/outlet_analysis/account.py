@@ -28,7 +28,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -264,7 +264,7 @@ class Account:
         return self._flows(self._rows(g), z)
 
     def _rows(self, g: int) -> slice:
-        count = len(self.problem.reactions.substances)
+        count = len(self.feed_map)
         return slice(g * count, (g + 1) * count)
 
     def _flows(self, rows: slice, z: FloatArray) -> FloatArray:
@@ -289,7 +289,8 @@ class Account:
 
     @property
     def _flow_rows(self) -> int:
-        return len(self.streams) * len(self.problem.reactions.substances)
+        rows, count = len(self.stream_map), len(self.feed_map)
+        return rows // (count + FURTHER) * count
 
     def largest_flow(self, z: FloatArray) -> FloatArray:
         """Largest flow of a substance in a stream, shape (...), of unknowns (..., n)."""
@@ -332,6 +333,10 @@ def independent_reactions(nu: FloatArray) -> list[int]:
             chosen.append(j)
             directions.append(rest / size)
     return chosen
+
+
+NONE: FloatArray = np.empty((0, 0))
+_Outside = tuple[Any, ...]
 
 
 class _Columns:
@@ -610,15 +615,18 @@ def _assemble(
 
     made = np.any(nu != 0, axis=0)
     reachable = [i for i in range(count) if fresh[i] or made[i]]
-    around = _Around(problem, writer, columns, total, [i for i in by_name if i in set(reachable)])
-    entries += around.entries
-    fed = [row | back for row, back in zip(fresh, around.returned, strict=True)]
-    total = [row | back for row, back in zip(total, around.returned, strict=True)]
-    entries += [
-        ((around.inlet * count + i), column, value)
-        for i in (reachable if around.inlet >= 0 else ())
-        for column, value in fed[i].items()
-    ]
+    fed, around = fresh, None
+    if problem.recycle is not None:
+        occurring = [i for i in by_name if fresh[i] or made[i]]
+        around = _Around(problem, problem.recycle, writer, columns, total, occurring)
+        fed = [row | back for row, back in zip(fresh, around.returned, strict=True)]
+        total = [row | back for row, back in zip(total, around.returned, strict=True)]
+        entries += around.entries
+        entries += [
+            (around.inlet * count + i, column, value)
+            for i in reachable
+            for column, value in fed[i].items()
+        ]
     left: list[dict[int, float]] = [{} for _ in range(count)]
     places = _places(problem, writer, reachable, released is None) if problem.outlet else {}
     for i in by_name:
@@ -649,12 +657,18 @@ def _assemble(
     for row, column, value in entries:
         stream_map[row, column] += value
     feed_map, outlet_map = _map_of(fed, n), _map_of(left, n)
-    fresh_map, returned_map = _map_of(fresh, n), _map_of(around.returned, n)
-    split_map = None
-    if around.split >= 0:
-        split_map = np.zeros_like(stream_map)
-        for row, column, value in around.times:
-            split_map[row, column] += value
+    outside: _Outside = (feed_map, np.zeros_like(feed_map), outlet_map, NONE, NONE)
+    if around is not None:
+        returned_map = _map_of(around.returned, n)
+        outside = (
+            _map_of(fresh, n),
+            returned_map,
+            outlet_map - returned_map,
+            _map_of([form for form, _ in around.equations], n),
+            _map_of([times for _, times in around.equations], n),
+            around.split,
+            around.split_map(stream_map),
+        )
     extent_map = np.zeros((len(nu), n))
     for column, unknown in enumerate(columns.unknowns):
         if unknown.kind == "extent":
@@ -672,13 +686,7 @@ def _assemble(
         extent_map,
         np.array([unknown.kind == "flow" for unknown in columns.unknowns], dtype=bool),
         np.array([unknown.kind == "extent" for unknown in columns.unknowns], dtype=bool),
-        fresh_map,
-        returned_map,
-        outlet_map - returned_map,
-        _map_of([form for form, _ in around.equations], n),
-        _map_of([times for _, times in around.equations], n),
-        around.split,
-        split_map,
+        *outside,
     )
 
 
@@ -701,12 +709,10 @@ def _shared_out(
 class _Around:
     """Unknowns and entries of the streams around a reactor with recycle.
 
-    Without one there are none.
-
     Attributes
     ----------
     inlet : int
-        The stream into the reactor, or -1.
+        The stream into the reactor.
     returned : list of dict
         What is returned of each substance, {column: coefficient}.
     entries, times : list of (row, column, coefficient)
@@ -720,20 +726,18 @@ class _Around:
     def __init__(
         self,
         problem: AccountProblem,
+        recycle: Recycle,
         writer: ReadingWriter,
         columns: _Columns,
         leaving: list[dict[int, float]],
         reachable: list[int],
     ) -> None:
-        self.inlet = self.split = -1
+        self.split = -1
         self.count = len(leaving)
         self.returned: list[dict[int, float]] = [{} for _ in leaving]
         self.entries: list[tuple[int, int, float]] = []
         self.times: list[tuple[int, int, float]] = []
         self.equations: list[tuple[dict[int, float], dict[int, float]]] = []
-        recycle = problem.recycle
-        if recycle is None:
-            return
         self.inlet = len(problem.feed) + len(problem.outlet)
         back = self.inlet + 1
         purge = back + 1 if recycle.purge is not None else -1
@@ -771,6 +775,15 @@ class _Around:
                 else "the purge is all that leaves, and it cannot"
             )
             raise _nowhere(problem, subject, which, stuck)
+
+    def split_map(self, stream_map: FloatArray) -> FloatArray | None:
+        """What of the stream space counts times the split, shaped as ``stream_map``."""
+        if self.split < 0:
+            return None
+        found = np.zeros_like(stream_map)
+        for row, column, value in self.times:
+            found[row, column] += value
+        return found
 
     def _leave(
         self,

@@ -143,10 +143,11 @@ class Forms:
 
         What rounding leaves where terms cancel is nothing.
         """
-        return replace(
-            self,
-            numerators=_mapped(self.numerators, linear_map),
-            bases=_mapped(self.bases, linear_map),
+        return Forms(
+            self.constants,
+            _mapped(self.numerators, linear_map),
+            _mapped(self.bases, linear_map),
+            self.exponents,
         )
 
     def through_split(self, linear_map: FloatArray, times: FloatArray, column: int) -> Forms:
@@ -221,21 +222,12 @@ class Forms:
         """Evaluate at ``z``, shape (N, n)."""
         numerator = z @ self.numerators.T
         base = z @ self.bases.T
+        numerators, bases = self.numerators, self.bases
         if self.split is not None:
             of_numerators, of_bases = self.split.products(z)
             numerator = numerator + of_numerators
             base = base + of_bases
             numerators, bases = self.tangents(z)
-            return self._evaluation(numerator, base, numerators, bases)
-        return self._evaluation(numerator, base, self.numerators, self.bases)
-
-    def _evaluation(
-        self,
-        numerator: FloatArray,
-        base: FloatArray,
-        numerators: FloatArray,
-        bases: FloatArray,
-    ) -> Evaluation:
         positive = base > 0
         inside: BoolArray = np.asarray(positive.all(axis=-1))
         if not inside.all():
@@ -255,4 +247,5 @@ class Forms:
 def _mapped(forms: FloatArray, linear_map: FloatArray) -> FloatArray:
     """Forms over the unknowns that the map leads from, free of what rounding leaves."""
     found = forms @ linear_map
-    return np.where(np.abs(found) > CANCELLED * (np.abs(forms) @ np.abs(linear_map)), found, 0.0)
+    size = np.abs(forms) @ np.abs(linear_map)
+    return np.where(np.abs(found) > CANCELLED * size, found, 0.0)

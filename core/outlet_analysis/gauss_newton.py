@@ -429,6 +429,7 @@ def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     return _Rest(slopes, residual, system.size, system.gauge, inverse, covariance, step)
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def covariance_at(
     fit: Fit, z: FloatArray, natural: FloatArray
 ) -> tuple[FloatArray, FloatArray, BoolArray]:
@@ -446,6 +447,7 @@ def covariance_at(
     return z + step, covariance, np.asarray(known)
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     """Covariance of the unknowns, leverage and redundancy of the readings, at a solution."""
     rest = _rest(fit, z, natural)
