@@ -264,7 +264,7 @@ NOTES: dict[str, Entry] = {
     ),
     "distribution-not-told": Entry(
         "Distribution not told",
-        "The readings do not tell how a substance is shared out among the outlet streams.",
+        "The readings do not tell how a substance is shared out among the streams that leave.",
     ),
     "analysis-sum": Entry(
         "Analysis off 100 %",

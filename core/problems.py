@@ -292,7 +292,7 @@ _SUBSTANCES_AND_REACTIONS: dict[str, Entry] = {
 _STREAMS: dict[str, Entry] = {
     "not-in-account": Entry(
         "Substance not in the account",
-        "The outlet names a substance that stands in no reaction and that no feed stream holds."
+        "A stream names a substance that stands in no reaction and that no feed stream holds."
         " Correct its name, or state it in the feed.",
     ),
     "stream-form": Entry(

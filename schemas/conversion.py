@@ -11,7 +11,7 @@ from typing import Any
 from marshmallow import fields
 
 from core.errors import Note, Subject
-from core.outlet_analysis.account import AccountProblem, named
+from core.outlet_analysis.account import AccountProblem, Recycle, readings_of
 from core.outlet_analysis.conversion import YieldBasis
 from core.outlet_analysis.correlations import Correlation
 from core.outlet_analysis.monte_carlo import (
@@ -31,7 +31,13 @@ from schemas.fields import Choice, List, Map, Number, Quantity, Text, describe
 from schemas.quantities import clip
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
-from schemas.streams import Side, StreamReader, StreamSchema, substances_of
+from schemas.streams import (
+    MeteredStreamSchema,
+    Side,
+    StreamReader,
+    StreamSchema,
+    substances_of,
+)
 
 MAX_CORRELATIONS = 1000
 
@@ -136,10 +142,42 @@ class ConversionRequest(AccountSchema):
     """Readings of feed and outlet."""
 
     feed = fields.Nested(
-        StreamSchema, required=True, metadata=describe("Into the reactor; its flows may be open.")
+        StreamSchema,
+        required=True,
+        metadata=describe(
+            "Into the reactor; its flows may be open. With 'recycle' the mixed inlet, of which no"
+            " more than the phase need be stated."
+        ),
     )
     outlet = fields.Nested(
-        StreamSchema, required=True, metadata=describe("Out of the reactor: analyses, flows.")
+        StreamSchema,
+        required=True,
+        metadata=describe(
+            "Out of the reactor: analyses, flows. With 'recycle' no more than the phase need be"
+            " stated."
+        ),
+    )
+    fresh_feed = fields.Nested(
+        StreamSchema,
+        metadata=describe("With 'recycle': what comes from outside; with it makes up 'feed'."),
+    )
+    recycle = fields.Nested(
+        MeteredStreamSchema,
+        metadata=describe(
+            "Returned to the reactor inlet. It, 'purge' and 'product' need state no more than"
+            " their phase where the other readings settle the account."
+        ),
+    )
+    purge = fields.Nested(
+        MeteredStreamSchema,
+        metadata=describe("With 'recycle': split off it, and of its composition."),
+    )
+    product = fields.Nested(
+        StreamSchema,
+        metadata=describe(
+            "With 'recycle': separated from the outlet. Left out: the outlet itself is split into"
+            " 'recycle' and 'purge'."
+        ),
     )
     reactor = fields.Nested(
         ReactorSizeSchema,
@@ -171,11 +209,11 @@ class ConversionQuestion:
     per_key : Mapping[int, float]
         Key consumed per product made, by substance, where stated.
     conditions : Mapping[str, Conditions or None]
-        What is stated of the sum of the streams, ``feed`` and ``outlet``.
+        What is stated of the sum of the streams of each member that may be several.
     readings : StreamReader
         Knows which readings have a default uncertainty.
     stream_ids : tuple of str
-        Of the feed streams, then of the outlet streams.
+        Of the streams of the problem.
     size : ReactorSize or None
         What space-time yields count by, where stated.
     sampling : Sampling or None
@@ -186,7 +224,7 @@ class ConversionQuestion:
     basis: YieldBasis
     element: str | None
     per_key: Mapping[int, float]
-    conditions: Mapping[Side, Conditions | None]
+    conditions: Mapping[str, Conditions | None]
     readings: StreamReader
     stream_ids: tuple[str, ...]
     size: ReactorSize | None
@@ -200,27 +238,35 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    return read_request(_REQUEST, document, ("feed", "outlet"), _read_question)
+    return read_request(_REQUEST, document, ("feed", "outlet", *AROUND), _read_question)
 
 
 def _read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> ConversionQuestion | None:
     key = read_key(request, reader, reactions)
-    batch = is_batch(request["feed"]) or is_batch(request["outlet"])
+    recycled = _check_recycle(request, reader)
+    sides: Mapping[str, Side] = RECYCLED if recycled else PLAIN
+    batch = any(is_batch(request[name]) for name in sides if name in request)
     readings = StreamReader(reader, reactions, batch)
-    sides, conditions = {}, {}
+    streams: dict[str, tuple[MeteredStream, ...]] = {}
+    conditions: dict[str, Conditions | None] = {}
     ids: list[str] = []
-    names: tuple[Side, ...] = ("feed", "outlet")
-    for side in names:
-        subject: Subject = (side,)
-        streams = request[side].get("streams", (request[side],))
-        ids.extend(stream.get("id", str(i)) for i, stream in enumerate(streams))
-        sides[side] = readings.metered(request[side], f"/{side}", subject, side)
-        conditions[side] = read_conditions(
-            readings, request[side], f"/{side}", subject, sides[side], one_phase=False
+    for name, side in sides.items():
+        if name not in request:
+            streams[name] = ()
+            continue
+        subject: Subject = (name,)
+        each = request[name].get("streams", (request[name],))
+        ids.extend(stream.get("id", str(i)) for i, stream in enumerate(each))
+        streams[name] = readings.metered(request[name], f"/{name}", subject, side)
+        conditions[name] = read_conditions(
+            readings, request[name], f"/{name}", subject, streams[name], one_phase=False
         )
-    _check_outlet(request["outlet"], reader, reactions, sides["feed"])
+    source = next(iter(sides))
+    for name in sides:
+        if name != source and {name, source} <= set(request):
+            _check_held(request[name], name, reader, reactions, streams[source], source)
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
     size = _size(request["reactor"], reader, batch) if "reactor" in request else None
@@ -231,18 +277,21 @@ def _read_question(
     if "draws" in uncertainty:
         reader.at(("uncertainty", "draws"), "/uncertainty/draws")
     correlations = _read_correlations(
-        request.get("correlations", ()), reader, (*sides["feed"], *sides["outlet"])
+        request.get("correlations", ()),
+        reader,
+        [stream for of in streams.values() for stream in of],
     )
     if reader.faults:
         return None
     problem = AccountProblem(
         reactions=reactions,
         key=key,
-        feed=sides["feed"],
-        outlet=sides["outlet"],
+        feed=streams[source],
+        outlet=streams["outlet"],
         batch=batch,
         coverage=uncertainty["coverage"],
         correlations=correlations,
+        recycle=_recycle(streams) if recycled else None,
     )
     reader.notes.extend(readings.readings.instrument_notes())
     per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
@@ -335,10 +384,7 @@ def _read_correlations(
     """Return the correlations between readings of the streams, found by their pointers."""
     if not stated:
         return ()
-    subjects = [subject for stream in streams for subject in named(stream)]
-    conditions = [of for stream in streams for of in (stream.temperature, stream.pressure)]
-    subjects += [of.subject for of in conditions if of is not None]
-    places = {reader.places[subject][0]: subject for subject in subjects}
+    places = {reader.places[subject][0]: subject for subject in readings_of(streams)}
     found = []
     for k, said in enumerate(stated):
         pointer = child("/correlations", k)
@@ -361,15 +407,72 @@ def _read_correlations(
     return tuple(found)
 
 
-def _check_outlet(
+AROUND = ("fresh_feed", "recycle", "purge", "product")
+"""Streams that stand around a reactor with recycle."""
+
+PLAIN: Mapping[str, Side] = {"feed": "feed", "outlet": "outlet"}
+RECYCLED: Mapping[str, Side] = {
+    "fresh_feed": "feed",
+    "outlet": "around",
+    "feed": "around",
+    "recycle": "around",
+    "purge": "around",
+    "product": "around",
+}
+"""The streams of a request in the order of the core, first what comes from outside."""
+
+
+def _check_recycle(request: Json, reader: RequestReader) -> bool:
+    """Whether the reactor has a recycle, of which all that is needed must be there."""
+    stated = [name for name in AROUND if name in request]
+    if not stated:
+        return False
+    found = ", ".join(map(repr, stated))
+    needed = {
+        "recycle": "its phase is enough where the other readings tell it",
+        "fresh_feed": "what comes from outside; 'feed' is then the mixed stream into the reactor",
+    }
+    for name, words in needed.items():
+        if name not in request:
+            reader.fault(
+                "field-needed",
+                f"/{name}",
+                f"found {found}, which belong to a reactor with recycle; it needs {name!r} too:"
+                f" state it ({words}), or leave out {found}",
+            )
+    if "purge" not in request and "product" not in request:
+        reader.fault(
+            "field-needed",
+            "/product",
+            f"found {found}; what is not returned must leave somewhere: state 'product' or 'purge'"
+            " (its phase is enough where the other readings tell it), or both",
+        )
+    if "streams" in request["feed"]:
+        reader.fault(
+            "conflicting-fields",
+            "/feed/streams",
+            "with a recycle 'feed' is the one stream into the reactor that 'fresh_feed' and"
+            " 'recycle' make together; several streams from outside stand in 'fresh_feed'",
+        )
+    return True
+
+
+def _recycle(streams: Mapping[str, tuple[MeteredStream, ...]]) -> Recycle:
+    (inlet,), (returned,) = streams["feed"], streams["recycle"]
+    return Recycle(inlet, returned, next(iter(streams["purge"]), None), streams["product"])
+
+
+def _check_held(
     document: Json,
+    side: str,
     reader: RequestReader,
     reactions: ReactionSet,
     feed: Sequence[MeteredStream],
+    source: str,
 ) -> None:
-    """Refuse what is named at the outlet and can be nowhere: a misspelt name, most often."""
+    """Refuse what is named in a stream and can be nowhere: a misspelt name, most often."""
     fed = {i for stream in feed for i in stream.present or ()}
-    for name, pointer in substances_of(document, "/outlet"):
+    for name, pointer in substances_of(document, f"/{side}"):
         i = reactions.find(name)
         if i is None or i in fed or reactions.nu[:, i].any():
             continue
@@ -379,8 +482,8 @@ def _check_outlet(
         reader.fault(
             "not-in-account",
             pointer,
-            f"{name!r} stands in no reaction, and no feed stream holds it: state it in the feed if"
-            f" it is there, or correct the name{hint}",
+            f"{name!r} stands in no reaction, and no feed stream holds it: state it in the"
+            f" {source.replace('_', ' ')} if it is there, or correct the name{hint}",
         )
 
 

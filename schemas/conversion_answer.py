@@ -2,30 +2,38 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from typing import Any
+from collections.abc import Callable, Sequence
+from functools import partial
+from typing import Any, TypeAlias
 
 import numpy as np
 from marshmallow import fields
 from scipy.special import ndtri
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Note
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
-from core.outlet_analysis.conversion import ConversionResults, flows_of
+from core.outlet_analysis.closure import Closures
+from core.outlet_analysis.conversion import ConversionResults, Overall
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
 from core.streams.known import Conditions, in_phase, solids_taken_as_gas
-from core.streams.metered import MeteredStream
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.conversion import ConversionQuestion
 from schemas.edge import EdgeMap, Json
-from schemas.feed import StreamResultSchema, words_of, write_stream
+from schemas.feed import (
+    MeteredStreamResultSchema,
+    StreamResultSchema,
+    words_of,
+    write_stream,
+)
 from schemas.fields import describe
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
-from schemas.streams import Side
+
+Drawn: TypeAlias = Callable[[FloatArray], FloatArray]
+"""Makes the flows of a stream (K, S) of unknowns (K, n)."""
 
 
 class RatioSchema(NumberSchema):
@@ -102,6 +110,7 @@ class AlternativeSchema(OpenSchema):
 
     removed = fields.List(fields.String(), required=True)
     conversion = number(required=True)
+    overall_conversion = number("With a recycle.")
     chi_square = number("Of what is left.")
 
 
@@ -130,6 +139,26 @@ class UncertaintyResultSchema(OpenSchema):
     )
 
 
+class OverallSchema(OpenSchema):
+    """A reactor with recycle and all around it: what leaves against the fresh feed."""
+
+    conversion = number(
+        "Net, of the key: (fresh - leaving in product and purge)/fresh.", required=True
+    )
+    yields = numbers_by_name(
+        RatioSchema, "By product, per key in the fresh feed; selectivities are the reactor's."
+    )
+    recycle_ratio = number(
+        "Moles returned to the reactor inlet over moles leaving in product and purge.",
+        required=True,
+    )
+    fresh_feed = fields.Nested(StreamResultSchema, required=True)
+    recycle = fields.Nested(MeteredStreamResultSchema, required=True)
+    purge = fields.Nested(MeteredStreamResultSchema, metadata=describe("Where there is one."))
+    product = fields.Nested(StreamResultSchema, metadata=describe("Where there is one."))
+    closure = numbers_by_name(ClosureSchema, "By element: what leaves over the fresh feed.")
+
+
 class ConversionResult(OpenSchema):
     """The account that fits the readings best."""
 
@@ -147,6 +176,7 @@ class ConversionResult(OpenSchema):
         " stated.",
     )
     closure = numbers_by_name(ClosureSchema, "By element.")
+    overall = fields.Nested(OverallSchema, metadata=describe("With a recycle."))
     reconciliation = fields.Nested(ReconciliationSchema, required=True)
     without_suspect = fields.Nested(WithoutSuspectSchema)
     uncertainty = fields.Nested(UncertaintyResultSchema, metadata=describe("Of monte-carlo."))
@@ -196,13 +226,13 @@ class _Writer:
         self.notes: list[Note] = []
 
     def answer(self) -> Answer:
-        found, results = self.found, self.results
+        found, results, account = self.found, self.results, self.found.account
         ids = [reaction.id for reaction in self.reactions.reactions]
         result: Json = {
             "conversion": self._number(results.conversion),
             "extents": self._by(ids, results.extents, self.flow),
-            "inlet": self._side("feed"),
-            "outlet": self._side("outlet"),
+            "inlet": self._side("feed", found.feed_flows, account.feed_map, account.inlet),
+            "outlet": self._side("outlet", found.outlet_flows, account.outlet_map, account.outlet),
         }
         for name in ("key_consumed_by", "key_produced_by"):
             shares: Uncertain | None = getattr(results, name)
@@ -214,7 +244,9 @@ class _Writer:
         if results.space_time_yields is not None:
             result["space_time_yields"] = self._space_time_yields(results.space_time_yields)
         if results.closures is not None:
-            result["closure"] = self._closure()
+            result["closure"] = self._closure(results.closures)
+        if results.overall is not None:
+            result["overall"] = self._overall(results.overall)
         result["reconciliation"] = self._reconciliation()
         if results.without_suspects:
             result["without_suspect"] = self._without_suspect()
@@ -263,26 +295,57 @@ class _Writer:
             return dict.fromkeys(names)
         return dict(zip(names, self._each(of, dimension), strict=True))
 
-    def _side(self, side: Side) -> Json:
-        """Return what flows on one side, and each stream where there are several."""
-        found, fed = self.found, len(self.problem.feed)
-        metered = self.problem.feed if side == "feed" else self.problem.outlet
-        flows = found.feed_flows if side == "feed" else found.outlet_flows
-        forms = found.account.feed_map if side == "feed" else found.account.outlet_map
+    def _side(
+        self,
+        side: str,
+        flows: FloatArray,
+        forms: FloatArray,
+        streams: range,
+        drawn: Drawn | None = None,
+    ) -> Json:
+        """Return what flows on one side, and each of its streams where there are several.
+
+        ``drawn`` makes its flows of unknowns where they are not linear forms of them.
+        """
+        drawn = drawn or (lambda z: z @ forms.T)
         conditions = self.question.conditions[side]
         volume = None
         if conditions is not None and conditions.phase == "liquid":
-            volume = self._liquid_volume(side)
-        stream = self._stream(flows, forms, conditions, volume)
-        if len(metered) > 1:
-            first = 0 if side == "feed" else fed
-            stream["streams"] = {
-                self.question.stream_ids[first + g]: self._one(first + g, one)
-                for g, one in enumerate(metered)
-            }
+            volume = self._liquid_volume(side, streams)
+        stream = self._stream(flows, forms, drawn, conditions, volume)
+        if len(streams) > 1:
+            stream["streams"] = {self.question.stream_ids[g]: self._one(g) for g in streams}
         return stream
 
-    def _one(self, g: int, metered: MeteredStream) -> Json:
+    def _overall(self, of: Overall) -> Json:
+        found, account = self.found, self.found.account
+        fresh = range(len(self.problem.feed))
+        said: Json = {
+            "conversion": self._number(of.conversion),
+            "yields": self._ratios(of.yields),
+            "recycle_ratio": self._number(of.recycle_ratio),
+            "fresh_feed": self._side("fresh_feed", found.fresh_flows, account.fresh_map, fresh),
+            "recycle": self._one(account.returned),
+        }
+        if account.purge is not None:
+            said["purge"] = self._one(account.purge)
+        if account.products:
+            said["product"] = self._side(
+                "product",
+                found.product_flows,
+                found.product_forms,
+                account.products,
+                account.product_flows,
+            )
+        if of.closures is not None:
+            said["closure"] = self._closure(of.closures)
+        return said
+
+    def _one(self, g: int) -> Json:
+        metered = self.found.account.streams[g]
+        volume = None
+        if metered.phase == "liquid":
+            volume = _told(self.found.liquid_volume([g]))
         conditions = Conditions(
             metered.phase,
             metered.subject,
@@ -291,13 +354,18 @@ class _Writer:
             metered.compressibility,
         )
         return self._stream(
-            self.found.stream_flows(g), self.found.stream_forms(g), conditions, None
+            self.found.stream_flows(g),
+            self.found.stream_forms(g),
+            partial(self.found.account.stream_flows, g),
+            conditions,
+            volume,
         )
 
     def _stream(
         self,
         flows: FloatArray,
         forms: FloatArray,
+        drawn: Drawn,
         conditions: Conditions | None,
         volume: float | None,
     ) -> Json:
@@ -323,8 +391,7 @@ class _Writer:
                 volume = total * z * GAS_CONSTANT * temperature / pressure
             if volume is None:
                 self._note(NO_CONCENTRATIONS)
-        every = np.concatenate([forms, forms.sum(axis=0)[None]])
-        spread = flows_of(self.found, every, self.results.draws)
+        spread = self._spread(flows, forms, drawn, told)
         intervals = None
         if spread.low is not None and spread.high is not None:
             intervals = (spread.low, spread.high, self.coverage)
@@ -347,19 +414,32 @@ class _Writer:
             self._note(DISTRIBUTION)
         return stream
 
+    def _spread(
+        self, flows: FloatArray, forms: FloatArray, drawn: Drawn, told: BoolArray
+    ) -> Uncertain:
+        """Return the flows of a stream that are told, and their total, with uncertainties."""
+        every = np.concatenate([flows, [flows.sum()]])
+        draws = self.results.draws
+        if draws is None:
+            return Uncertain(
+                every, self.found.u_of(np.concatenate([forms, forms.sum(axis=0)[None]]))
+            )
+        of_draws = drawn(draws.z)[:, told]
+        return draws.spread(every, np.column_stack([of_draws, of_draws.sum(axis=1)]))
+
     def _note(self, note: Note) -> None:
         if note not in self.notes:
             self.notes.append(note)
 
-    def _liquid_volume(self, side: Side) -> float | None:
+    def _liquid_volume(self, side: str, streams: range) -> float | None:
         """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
-        own = self.found.liquid_volume(side)
+        own = self.found.liquid_volume(streams)
         if own is None and side == "outlet":
             # A liquid of constant density leaves with the volume that it came in with.
-            own = self.found.liquid_volume("feed")
-            if own is not None and np.isfinite(own):
+            own = self.found.liquid_volume(self.found.account.inlet)
+            if _told(own) is not None:
                 self.assumed.append(CONSTANT_DENSITY)
-        return None if own is None or not np.isfinite(own) else float(own)
+        return _told(own)
 
     def _ratios(self, of: Uncertain) -> Json:
         said = self.results.yields
@@ -386,9 +466,7 @@ class _Writer:
             found[names[i]] = said
         return found
 
-    def _closure(self) -> Json:
-        closures = self.results.closures
-        assert closures is not None
+    def _closure(self, closures: Closures) -> Json:
         into, out = self._each(closures.into, self.flow), self._each(closures.out, self.flow)
         return {
             element: {"in": before, "out": after, "ratio": ratio}
@@ -466,8 +544,16 @@ class _Writer:
                 self.found.without_suspects, self.results.without_suspects, strict=True
             )
         ]
+        if self.results.overall is not None:
+            for way, overall in zip(ways, self.results.overall.without_suspects, strict=True):
+                way["overall_conversion"] = self._number(overall)
         first, *others = ways
         return {**first, "alternatives": others} if others else first
+
+
+def _told(value: FloatArray | None) -> float | None:
+    """Return a number where there is one."""
+    return None if value is None or not np.isfinite(value) else float(value)
 
 
 def _as_read(number_: Json | None) -> Json | None:
@@ -493,8 +579,8 @@ NO_CONCENTRATIONS = Note(
 )
 DISTRIBUTION = Note(
     "distribution-not-told",
-    "the readings do not tell how a substance is shared out among the outlet streams; such a"
-    " stream has no total, and only the flows that are known",
+    "the readings do not tell how a substance is shared out among the streams that leave; such"
+    " a stream has no total, and only the flows that are known",
     subject=("outlet",),
 )
 INCONSISTENT = Note(

@@ -33,7 +33,9 @@ MAX_ANALYSES = 12
 
 PHASES = ("gas", "liquid")
 
-Side = Literal["feed", "outlet"]
+Side = Literal["feed", "outlet", "around"]
+"""What is asked of a stream: of a feed what it holds; of an outlet some reading; of a stream
+around a reactor with recycle nothing but its phase, since the others may tell it."""
 
 
 class MeteredStreamSchema(ClosedSchema):
@@ -155,7 +157,7 @@ class StreamReader:
     def metered(
         self, document: Json, pointer: str, subject: Subject, side: Side
     ) -> tuple[MeteredStream, ...]:
-        """Return the metered streams of a feed or an outlet.
+        """Return the metered streams of a feed, an outlet, or around a reactor with recycle.
 
         An outlet may be known by its analysis alone, or by its flow alone; each
         stream of a known feed states what flows in it.
@@ -253,7 +255,7 @@ class StreamReader:
 
     def _form(self, document: Json, pointer: str, side: Side) -> str:
         stated = [name for name in CONTENT_FORMS if name in document]
-        if not stated and side == "outlet" and "flow" in document:
+        if not stated and (side == "around" or (side == "outlet" and "flow" in document)):
             return "analysis"
         if len(stated) != 1:
             found = ", ".join(stated) or "none of them"

@@ -38,17 +38,20 @@ def most_refits(readings: int, unknowns: int, equations: int) -> int:
     return max(1, int(WORK_OF_REFITS / work(readings, unknowns, equations)))
 
 
-def most_draws(readings: Readings, unknowns: int, substances: int) -> int:
+def most_draws(
+    readings: Readings, unknowns: int, further: int, substances: int, closures: int
+) -> int:
     """How many draws of an account's readings may be fitted, for it and for its closures.
 
-    The closures' account has the flows of the outlet among its unknowns.
+    ``further`` is how many equations it has beside its readings. The closures'
+    accounts have the flows of the outlet among their unknowns.
     """
-    m, equations = len(readings.subjects), _equations(readings)
-    each = sum(
+    m, equations = len(readings.subjects), further + _equations(readings)
+    of_draw = [
         LEAST_WORK + WORK_OF_SLOPES * m * n + WORK_TOGETHER * work(m, n, equations)
-        for n in (unknowns, unknowns + substances)
-    )
-    return int(WORK_OF_DRAWS / each)
+        for n in (unknowns, *[unknowns + substances] * closures)
+    ]
+    return int(WORK_OF_DRAWS / sum(of_draw))
 
 
 def _equations(readings: Readings) -> int:
@@ -60,10 +63,15 @@ def _equations(readings: Readings) -> int:
     return int(np.count_nonzero(as_equations))
 
 
-def over_budget(readings: Readings, unknowns: int, subject: Subject) -> Refused | None:
-    """Return the refusal ``compute-budget`` of an account that is too large, else None."""
+def over_budget(
+    readings: Readings, unknowns: int, further: int, subject: Subject
+) -> Refused | None:
+    """Return the refusal ``compute-budget`` of an account that is too large, else None.
+
+    ``further`` is how many equations the account has beside its readings.
+    """
     m = len(readings.subjects)
-    equations = _equations(readings)
+    equations = further + _equations(readings)
     within = unknowns <= MOST_UNKNOWNS and m <= MOST_READINGS
     if within and work(m, unknowns, equations) <= MOST_WORK:
         return None

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from functools import lru_cache
@@ -10,7 +10,7 @@ from typing import Literal
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray, IntArray
+from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fact, Note, refuse
 from core.outlet_analysis.account import Account, listed
 from core.outlet_analysis.analysis_sums import percent
@@ -70,6 +70,32 @@ class Yields:
 
 
 @dataclass(frozen=True, eq=False)
+class Overall:
+    """What an account says of a reactor with recycle and all around it.
+
+    Attributes
+    ----------
+    conversion : Uncertain, shape (...)
+        (fresh - leaving in purge and products)/fresh of the key.
+    yields : Uncertain, shape (..., P)
+        s_P (leaving - fresh of P)/fresh of the key, of the products that
+        :class:`Yields` names. Selectivities are those of the reactor, as what
+        is made and used up is the same.
+    recycle_ratio : Uncertain, shape (...)
+        Moles returned to the reactor inlet over moles leaving.
+    closures : Closures or None
+    without_suspects : tuple of Uncertain
+        The overall conversion in each way of ``found.without_suspects``.
+    """
+
+    conversion: Uncertain
+    yields: Uncertain
+    recycle_ratio: Uncertain
+    closures: Closures | None
+    without_suspects: tuple[Uncertain, ...]
+
+
+@dataclass(frozen=True, eq=False)
 class ConversionResults:
     """What an account says of the reactor; a ratio is not a number where it has no meaning.
 
@@ -90,6 +116,8 @@ class ConversionResults:
         For each way to leave out one reading of every suspect set; always by
         linear propagation.
     notes : tuple of Note
+    overall : Overall or None
+        With a recycle.
     draws : Draws or None
         Where the uncertainties are those of draws.
     """
@@ -103,6 +131,7 @@ class ConversionResults:
     space_time_yields: SpaceTimeYields | None
     without_suspects: tuple[tuple[tuple[int, ...], Uncertain], ...]
     notes: tuple[Note, ...]
+    overall: Overall | None = None
     draws: Draws | None = None
 
 
@@ -147,20 +176,24 @@ def conversion_results(
     chosen, factors, of_factors = _factors(reactions, key, basis, element, stated)
     products, notes = list(chosen), list(of_factors)
 
-    # One call gives the conversion, every yield and every selectivity.
+    # One call gives the conversion, every yield and every selectivity, and what they are overall.
     made = np.nan_to_num(factors)[:, None] * (account.outlet_map - account.feed_map)[products]
     count = len(products)
     numerators = np.concatenate([(fed - left)[None], made, made])
     denominators = np.concatenate(
         [np.broadcast_to(fed, (1 + count, len(fed))), np.broadcast_to(fed - left, made.shape)]
     )
+    if problem.recycle is not None:
+        above, below = _overall_forms(account, made)
+        numerators = np.concatenate([numerators, above])
+        denominators = np.concatenate([denominators, below])
     largest = account.largest_flow(z)
     linear = all_ratios = ratios(z, covariance, numerators, denominators, largest)
     if draws is not None:
         all_ratios = draws.ratios(linear, z, numerators, denominators)
     nowhere = np.isnan(factors)
 
-    def part(first: int, last: int, hidden: BoolArray) -> Uncertain:
+    def part(first: int, last: int, hidden: BoolArray | bool) -> Uncertain:
         return all_ratios.each(lambda of: np.where(hidden, np.nan, of[..., first:last]))
 
     conversion = _first(all_ratios)
@@ -181,39 +214,88 @@ def conversion_results(
             part(1, 1 + count, nowhere),
             part(1 + count, 1 + 2 * count, nowhere),
         ),
-        closures=element_closures(found, draws) if closures else None,
+        closures=element_closures(found, draws=draws) if closures else None,
         space_time_yields=None
         if size is None
         else space_time_yields(found, products_of(reactions, key), size, draws),
         without_suspects=tuple(
-            (
-                way.removed,
-                _first(
-                    ratios(
-                        way.z,
-                        way.covariance,
-                        (fed - left)[None],
-                        fed[None],
-                        account.largest_flow(way.z),
-                    )
-                ),
-            )
+            (way.removed, _converted(account, fed, left, way.z, way.covariance))
             for way in found.without_suspects
         ),
         notes=(),
+        overall=None
+        if problem.recycle is None
+        else _overall(found, part, 1 + 2 * count, nowhere, whole=closures, draws=draws),
         draws=draws,
     )
     notes += _null_notes(found, results)
     if draws is None:
-        notes += _doubtful(found, linear, numerators, denominators, nowhere, products)
+        hidden = np.concatenate([[False], nowhere, nowhere])
+        if problem.recycle is not None:
+            hidden = np.concatenate([hidden, [False], nowhere, [False]])
+        named = _names(found, products)
+        notes += _doubtful(found, linear, numerators, denominators, hidden, named)
     else:
         notes += draws.notes
         notes += _mean_note(draws, numerators[0], denominators[0], conversion)
-    if results.closures is not None:
-        notes += results.closures.notes
-    if results.space_time_yields is not None:
-        notes += results.space_time_yields.notes
+    for of in (
+        results.closures,
+        results.overall.closures if results.overall else None,
+        results.space_time_yields,
+    ):
+        if of is not None:
+            notes += of.notes
     return ConversionResults(**{**vars(results), "notes": tuple(notes)})
+
+
+def _overall_forms(account: Account, made: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Numerators and denominators, (P + 2, n), of the overall conversion, yields, recycle ratio.
+
+    ``made`` are the products made, as key, shape (P, n).
+    """
+    key, fresh, leaving = account.problem.key, account.fresh_map, account.leaving_map
+    per_key = np.broadcast_to(fresh[key], (1 + len(made), fresh.shape[1]))
+    return (
+        np.concatenate([(fresh - leaving)[[key]], made, account.returned_map.sum(axis=0)[None]]),
+        np.concatenate([per_key, leaving.sum(axis=0)[None]]),
+    )
+
+
+def _overall(
+    found: Estimate,
+    part: Callable[[int, int, BoolArray | bool], Uncertain],
+    first: int,
+    nowhere: BoolArray,
+    *,
+    whole: bool,
+    draws: Draws | None,
+) -> Overall:
+    """Return the ratios of what leaves to what comes from outside.
+
+    They are the ``part`` from ``first`` on; ``nowhere`` marks yields without a
+    factor. ``whole`` asks for element closures.
+    """
+    account = found.account
+    key, fresh, leaving = account.problem.key, account.fresh_map, account.leaving_map
+    last = first + 1 + len(nowhere)
+    return Overall(
+        _first(part(first, first + 1, False)),
+        part(first + 1, last, nowhere),
+        _first(part(last, last + 1, False)),
+        element_closures(found, "whole", draws) if whole else None,
+        tuple(
+            _converted(account, fresh[key], leaving[key], way.z, way.covariance)
+            for way in found.without_suspects
+        ),
+    )
+
+
+def _converted(
+    account: Account, into: FloatArray, out: FloatArray, z: FloatArray, covariance: FloatArray
+) -> Uncertain:
+    """Return (in - out)/in, of linear forms of shape (n,)."""
+    largest = account.largest_flow(z)
+    return _first(ratios(z, covariance, (into - out)[None], into[None], largest))
 
 
 def _first(of: Uncertain) -> Uncertain:
@@ -227,15 +309,21 @@ def flows_of(found: Estimate, forms: FloatArray, draws: Draws | None) -> Uncerta
     return draws.forms(found.z, forms)
 
 
-def _names(found: Estimate, products: list[int], which: IntArray) -> str:
-    """Name ratios by the order in which they are computed."""
+def _names(found: Estimate, products: list[int]) -> list[str]:
+    """Name the ratios in the order in which they are computed."""
     made = [found.account.problem.reactions.names[i] for i in products]
     names = [
         "the conversion",
         *(f"the yield of {name}" for name in made),
         *(f"the selectivity of {name}" for name in made),
     ]
-    return listed([names[k] for k in which.tolist()])
+    if found.account.problem.recycle is not None:
+        names += [
+            "the overall conversion",
+            *(f"the overall yield of {name}" for name in made),
+            "the recycle ratio",
+        ]
+    return names
 
 
 def _doubtful(
@@ -243,15 +331,14 @@ def _doubtful(
     linear: Uncertain,
     numerators: FloatArray,
     denominators: FloatArray,
-    nowhere: BoolArray,
-    products: list[int],
+    hidden: BoolArray,
+    names: Sequence[str],
 ) -> list[Note]:
     """Return the note that linear propagation is in doubt, of a single sample."""
     local = found.local
     if local is None:
         return []
-    there = np.concatenate([[False], nowhere, nowhere])
-    there = np.flatnonzero(np.isfinite(linear.value) & (linear.u > 0) & ~there)
+    there = np.flatnonzero(np.isfinite(linear.value) & (linear.u > 0) & ~hidden)
     if not len(there):
         return []
     notes = []
@@ -265,7 +352,7 @@ def _doubtful(
                 _doubt(
                     "linear propagation is in doubt for {results}: what is curved in the account"
                     " shifts or widens them by up to {share} of u",
-                    _names(found, products, there[doubt]),
+                    listed([names[k] for k in there[doubt].tolist()]),
                     worst,
                 )
             )
@@ -278,7 +365,7 @@ def _doubtful(
                 _doubt(
                     "the intervals are in doubt for {results}: non-detects bring up to {share} of"
                     " the variance, and what lies below a limit is not distributed normally",
-                    _names(found, products, there[doubt]),
+                    listed([names[k] for k in there[doubt].tolist()]),
                     float(share.max()),
                 )
             )
@@ -485,6 +572,24 @@ def _null_notes(found: Estimate, results: ConversionResults) -> list[Note]:
         "conversion",
         severity="warning",
     )
+    if results.overall is not None:
+        remark(
+            estimated & np.isnan(results.overall.conversion.value),
+            "denominator-near-zero",
+            "no overall conversion or yield is given: the flow of {key} in the fresh feed is"
+            " within twice its uncertainty of zero, or of what rounding leaves",
+            "overall",
+            severity="warning",
+        )
+        remark(
+            estimated & np.isnan(results.overall.recycle_ratio.value),
+            "denominator-near-zero",
+            "no recycle ratio is given: what leaves is within twice its uncertainty of zero, or of"
+            " what rounding leaves",
+            "overall",
+            severity="warning",
+            named={},
+        )
     of = results.yields
     lost = np.isnan(of.selectivities.value) & ~np.isnan(of.factors)
     remark(

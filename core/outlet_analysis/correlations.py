@@ -94,11 +94,9 @@ class Errors:
         u = np.array(self.own)
         by_instrument: dict[Instrument, list[int]] = {}
         for row, parts in self.shared.items():
-            square = u[:, row] ** 2
             for instrument, part in parts.items():
-                square = square + np.asarray(part) ** 2
+                u[:, row] = np.hypot(u[:, row], part)
                 by_instrument.setdefault(instrument, []).append(row)
-            u[:, row] = np.sqrt(square)
         pairs = self._pairs(stated)
         linked = {row for rows in by_instrument.values() if len(rows) > 1 for row in rows}
         linked.update(row for pair in pairs for row in pair)
@@ -111,16 +109,17 @@ class Errors:
             own[place[i], place[j]] = own[place[j], place[i]] = coefficient
         if pairs:
             self._check(rows, own, stated)
-        spread = self.own[:, rows]
-        covariance = spread[:, :, None] * own * spread[:, None, :]
+        # Each part by the whole, whose square may be too small or large a number.
+        scale = np.where(u[:, rows] > 0, u[:, rows], 1.0)
+        spread = self.own[:, rows] / scale
+        coefficients = spread[:, :, None] * own * spread[:, None, :]
         for instrument, sharing in by_instrument.items():
             part = np.zeros_like(spread)
             for row in sharing:
                 if row in place:
                     part[:, place[row]] = self.shared[row][instrument]
-            covariance += part[:, :, None] * part[:, None, :]
-        scale = np.where(u[:, rows] > 0, u[:, rows], 1.0)
-        coefficients = covariance / (scale[:, :, None] * scale[:, None, :])
+            part /= scale
+            coefficients += part[:, :, None] * part[:, None, :]
         coefficients[:, range(len(rows)), range(len(rows))] = 1.0
         if (coefficients == coefficients[0]).all():
             coefficients = coefficients[:1]

@@ -45,6 +45,9 @@ LEFT_OF_BASE = 0.1
 SUFFICIENT = 0.2
 """Share of its first-order fall that the merit must fall by, or the step is damped."""
 ROUNDING = 1e-11
+SHORTER, MOST_SHORTENINGS = 0.25, 6
+"""By how much an undamped step is shortened that does not lower the merit, and how often, before
+it is damped."""
 LEAST_DAMPING = 1e-3
 MOST_DAMPING = 1e8
 ROUNDING_GAP = 1e-9
@@ -311,6 +314,10 @@ class _Hard:
     slope: FloatArray
     compliance: FloatArray
 
+    def samples(self, rows: IntArray) -> _Hard:
+        """Return that of the samples marked."""
+        return _Hard(self.slope[rows], self.compliance[rows])
+
     def penalty(self, gap: FloatArray) -> FloatArray:
         """Return what the misses ``gap`` count, shape (N,)."""
         miss = np.abs(gap)
@@ -426,7 +433,7 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         gain = np.maximum(next_.gain, 0.0)
         whole = tried.inside & (damping == 0)
         if next_.hard is not None and not whole.all():
-            length = np.where(whole, 1.0, _length(fit, found, next_, damping))
+            length = np.where(whole, 1.0, _length(found, next_, damping))
             trial = z + length[:, None] * next_.step
             tried = fit.forms.at(trial)
             gain *= length
@@ -434,6 +441,16 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
         enough = before - SUFFICIENT * gain + ROUNDING * (1 + before)
         better: BoolArray = np.asarray(tried.inside & next_.sound & (after <= enough))
         plain = damping == 0
+        worse = np.flatnonzero(plain & next_.sound & ~better)
+        if len(worse):
+            part = next_.hard.samples(worse) if next_.hard is not None else None
+            expected = np.maximum(next_.gain[worse], 0.0)
+            length = _shortened(
+                fit.samples(worse), z[worse], next_.step[worse], before[worse], expected, part
+            )
+            trial[worse] = z[worse] + length[:, None] * next_.step[worse]
+            better[worse] = length > 0
+            tried = fit.forms.at(trial)
         settled = _settled(next_, previous, plain)
         previous = np.where(plain, next_.decrement, np.inf)
         if better.all():
@@ -460,13 +477,43 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
     return Solution(z_all, converged)
 
 
-def _length(fit: Fit, found: Evaluation, of: _Step, damping: FloatArray) -> FloatArray:
+def _shortened(
+    fit: Fit,
+    z: FloatArray,
+    step: FloatArray,
+    before: FloatArray,
+    gain: FloatArray,
+    hard: _Hard | None,
+) -> FloatArray:
+    """Part of undamped steps that lowers the merit enough, shape (N,); 0 where none does.
+
+    Damping alone would hold back what the readings tell only weakly, and with
+    it all that is left to go.
+    """
+    found = np.zeros(len(z))
+    open_ = np.arange(len(z))
+    length = 1.0
+    for _ in range(MOST_SHORTENINGS):
+        length *= SHORTER
+        of = fit.samples(open_)
+        tried = of.forms.at(z[open_] + length * step[open_])
+        part = None if hard is None else hard.samples(open_)
+        enough = before[open_] - SUFFICIENT * length * gain[open_]
+        good = tried.inside & (_merit(of, tried, part) <= enough)
+        found[open_[good]] = length
+        open_ = open_[~good]
+        if not len(open_):
+            break
+    return found
+
+
+def _length(found: Evaluation, of: _Step, damping: FloatArray) -> FloatArray:
     """Part to take of steps that are damped or lead outside, shape (N,).
 
     No base falls to less than ``LEFT_OF_BASE`` of itself. As damping does not
     shorten what the stiff readings ask for, the whole step is shortened with it.
     """
-    change = each(fit.forms.bases, of.step)
+    change = each(found.bases, of.step)
     falling = change < -(1 - LEFT_OF_BASE) * found.base
     share = np.where(falling, found.base / np.where(falling, -change, 1.0), 1.0)
     length = np.where(falling, (1 - LEFT_OF_BASE) * share, 1.0).min(axis=-1, initial=1.0)
@@ -554,6 +601,7 @@ class _Rest:
     step: FloatArray
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     found = fit.forms.at(z)
     slopes = fit.forms.jacobian(found)
@@ -578,6 +626,7 @@ def _rest(fit: Fit, z: FloatArray, natural: FloatArray) -> _Rest:
     return _Rest(slopes, residual, system.size, system.gauge, inverse, covariance, step)
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def covariance_at(
     fit: Fit, z: FloatArray, natural: FloatArray
 ) -> tuple[FloatArray, FloatArray, BoolArray]:
@@ -588,13 +637,15 @@ def covariance_at(
     """
     rest = _rest(fit, z, natural)
     n = z.shape[1]
-    known = rest.inverse[:, :n, :n].diagonal(axis1=1, axis2=2) < SINGULAR
+    own = rest.inverse[:, :n, :n].diagonal(axis1=1, axis2=2)
+    known = (own > -ROUNDING_VARIANCE) & (own < SINGULAR)
     covariance, step = rest.covariance, rest.size * rest.step[:, :n]
     if not known.all():
         covariance, step = np.nan_to_num(covariance), np.nan_to_num(step)
     return z + step, covariance, np.asarray(known)
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def curvature(fit: Fit, z: FloatArray, natural: FloatArray) -> Curvature:
     """Covariance of the unknowns, leverage and redundancy of the readings, at a solution."""
     rest = _rest(fit, z, natural)

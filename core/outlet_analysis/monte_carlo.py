@@ -134,12 +134,17 @@ class Draws:
         return self.spread(value, above / np.where(np.isfinite(value), below, 1.0))
 
 
-def drawn_blocks(account: Account, sampling: Sampling) -> Iterator[tuple[slice, Account]]:
+def drawn_blocks(
+    account: Account, sampling: Sampling, part: Account | None = None
+) -> Iterator[tuple[slice, Account]]:
     """Yield the draws block by block: which they are, and the account with them as a series.
 
     The stream of random numbers (PCG64) runs draw by draw, a number for each
-    reading, so that it does not depend on the size of the blocks.
+    reading, so that it does not depend on the size of the blocks. With ``part``,
+    an account of some of the readings, it is that with the same draws of them.
     """
+    of = account if part is None else part
+    columns = _columns(account, of)
     readings = account.readings
     m = len(readings.subjects)
     bound, limit = readings.bound[0], readings.measured[0]
@@ -163,13 +168,21 @@ def drawn_blocks(account: Account, sampling: Sampling) -> Iterator[tuple[slice, 
         if below.any():
             measured = np.where(below, limit * ndtr(normal), measured)
         series = replace(
-            readings,
-            measured=measured,
-            u=np.broadcast_to(u, measured.shape),
-            bound=np.broadcast_to(np.where(above, bound, 0).astype(np.int8), measured.shape),
+            of.readings,
+            measured=measured[:, columns],
+            u=np.broadcast_to(u[columns], (count, len(columns))),
+            bound=np.broadcast_to(
+                np.where(above, bound, 0).astype(np.int8)[columns], (count, len(columns))
+            ),
             samples=count,
         )
-        yield slice(first, first + count), replace(account, readings=series)
+        yield slice(first, first + count), replace(of, readings=series)
+
+
+def _columns(account: Account, part: Account) -> IntArray:
+    """Places of the readings of a part among those of the account."""
+    places = {subject: k for k, subject in enumerate(account.readings.subjects)}
+    return np.array([places[subject] for subject in part.readings.subjects], dtype=np.intp)
 
 
 def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
@@ -186,7 +199,7 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
     z = np.full((sampling.draws, len(account.unknowns)), np.nan)
     for rows, series in drawn_blocks(account, sampling):
         block = z[rows]
-        for outcome in fit_block(prepare(series, slice(0, len(block))), _reported(account)):
+        for outcome in fit_block(prepare(series, slice(0, len(block))), account.reported):
             if isinstance(outcome, Fitted):
                 block[outcome.rows] = outcome.z
                 block[np.ix_(outcome.rows, outcome.absent)] = 0.0
@@ -217,10 +230,6 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
     return replace(draws, notes=(note,))
 
 
-def _reported(account: Account) -> FloatArray:
-    return np.concatenate([account.feed_map, account.outlet_map, account.extent_map])
-
-
 def _check(account: Account, sampling: Sampling, coverage: float) -> None:
     needed = int(np.ceil(round(2 * IN_EACH_TAIL / (1 - coverage), 6)))
     if sampling.draws < needed:
@@ -235,7 +244,13 @@ def _check(account: Account, sampling: Sampling, coverage: float) -> None:
             needed=needed,
         )
     substances = len(account.problem.reactions.substances)
-    most = most_draws(account.readings, len(account.unknowns), substances)
+    most = most_draws(
+        account.readings,
+        len(account.unknowns),
+        len(account.equations),
+        substances,
+        1 if account.problem.recycle is None else 2,
+    )
     if sampling.draws > most:
         raise refuse(
             "compute-budget",

@@ -83,7 +83,7 @@ def may_be_curved(local: Local, denominators: FloatArray) -> bool:
     shift a ratio by no more than u sqrt(sum of t^2/u^2), by Cauchy and Schwarz.
     """
     fit, at = local.fit, local.curvature
-    if fit.mixture is not None:
+    if fit.mixture is not None or fit.forms.split is not None:
         return True
     forms, z, covariance = fit.forms, at.z[0], at.covariance[0]
     below = denominators @ z
@@ -129,10 +129,15 @@ def second_order(
     gain = _gain(local, slope)
     stiff = fit.stiff
     variance = fit.compliance[0]
-    bent = np.flatnonzero((forms.exponents != 0).any(axis=1))
+    split = forms.split
+    curved = (forms.exponents != 0).any(axis=1)
+    if split is not None:
+        curved |= (split.numerators != 0).any(axis=1)
+    bent = np.flatnonzero(curved)
     exponents, base = forms.exponents[bent], found.base[0]
-    counted = forms.numerators[bent]
-    against = (exponents / base) @ forms.bases
+    numerators, bases = (of[0] if of.ndim > 2 else of for of in (found.numerators, found.bases))
+    counted = numerators[bent]
+    against = (exponents / base) @ bases
     product, value = found.product[0, bent], found.value[0, bent]
 
     m = -(slope[:, :, None] * denominators[:, None, :]) / below[:, None, None]
@@ -141,7 +146,15 @@ def second_order(
     of_value = gain[:, bent] * value
     m -= (against.T * of_value[:, None, :]) @ against
     per_base = exponents / base**2
-    m += (forms.bases.T * (of_value @ per_base)[:, None, :]) @ forms.bases
+    m += (bases.T * (of_value @ per_base)[:, None, :]) @ bases
+    # What counts times the split bends by that; of a reading, with product and value.
+    times = np.zeros_like(counted)
+    if split is not None:
+        times = product[:, None] * split.numerators[bent]
+        times += (value[:, None] * exponents / base) @ split.bases
+        of_split = gain[:, bent] @ times
+        m[:, split.column] -= of_split
+        m[:, :, split.column] -= of_split
     turned = m @ covariance
     bias = 0.5 * turned.trace(axis1=1, axis2=2)
     square = 0.5 * (turned * turned.transpose(0, 2, 1)).sum(axis=(1, 2))
@@ -151,8 +164,11 @@ def second_order(
     along_counted, along_against = moved @ counted.T, moved @ against.T
     bends[:, bent] = (product * along_against)[:, :, None] * counted
     bends[:, bent] += (product * along_counted + value * along_against)[:, :, None] * against
-    of_bases = (moved @ forms.bases.T)[:, None, :] * per_base
-    bends[:, bent] -= value[:, None] * (of_bases @ forms.bases)
+    of_bases = (moved @ bases.T)[:, None, :] * per_base
+    bends[:, bent] -= value[:, None] * (of_bases @ bases)
+    if split is not None:
+        bends[:, bent] += moved[:, split.column, None, None] * times
+        bends[:, bent, split.column] += moved @ times.T
     weight, slopes = fit.weight[0], rest.slopes[0]
     if len(stiff):
         sound = np.isfinite(variance) & (variance > 0)

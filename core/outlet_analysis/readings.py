@@ -124,14 +124,6 @@ class Readings:
     correlated: Correlated | None = None
 
 
-def describe_stream(streams: tuple[MeteredStream, ...], feeds: int, g: int) -> str:
-    """Return the words for stream ``g`` of feeds followed by outlets."""
-    role, first, count = (
-        ("feed", 0, feeds) if g < feeds else ("outlet", feeds, len(streams) - feeds)
-    )
-    return f"the {role}" if count == 1 else f"{role} stream {g - first + 1}"
-
-
 @dataclass(frozen=True, eq=False)
 class DifferentialPressure:
     """A flow read by differential pressure, and what passes its meter as forms.

@@ -35,7 +35,7 @@ from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
-from core.outlet_analysis.solving import Fitted, fit_block, open_at
+from core.outlet_analysis.solving import Fitted, fit_block, open_at, still_open
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
 
@@ -85,12 +85,6 @@ def estimates(problem: AccountProblem) -> Iterator[Estimate]:
         yield _estimate_block(account, slice(first, min(first + BLOCK, samples)))
 
 
-def _reported(account: Account) -> FloatArray:
-    if not account.problem.outlet:
-        return account.feed_map
-    return np.concatenate([account.feed_map, account.outlet_map, account.extent_map])
-
-
 def _estimate_block(account: Account, rows: slice) -> Estimate:
     block = prepare(account, rows)
     readings = account.readings
@@ -100,7 +94,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
     without: tuple[WithoutSuspects, ...] = ()
     ways, cut = 0, False
     local = None
-    for outcome in fit_block(block, _reported(account)):
+    for outcome in fit_block(block, account.reported):
         if not isinstance(outcome, Fitted):
             failed.update((int(row), outcome[1]) for row in outcome[0])
             continue
@@ -122,7 +116,10 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.hide(at, unknown[:, :m])
         if len(outcome.absent):
             out.leave_out(at, outcome.absent)
-        for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
+        singular = ~(seen.curvature.inflation < SINGULAR)
+        if account.split >= 0:
+            singular |= still_open(account, outcome, block.active[at])
+        for row in np.flatnonzero(singular).tolist():
             one = slice(row, row + 1)
             failed[int(at[row])] = open_at(
                 block, int(at[row]), outcome.z[one], outcome.natural[one]
@@ -147,7 +144,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.freedom > 0, chdtrc(np.maximum(out.freedom, 1), out.chi_square), np.nan
         ),
         inconsistent=(out.chi_square > out.limit) | out.contradicted.any(axis=1),
-        per_mole_of_key=block.active[:, m],
+        per_mole_of_key=block.active[:, -1],
         told=out.told,
         absent=out.absent,
         inflation=out.inflation,
@@ -182,7 +179,7 @@ def _stated(block: Block, fitted: Fitted) -> tuple[Stated, BoolArray]:
 
 
 def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> ReadingTable:
-    bound: NDArray[np.int8] = block.bound[:, :-1]
+    bound: NDArray[np.int8] = block.bound[:, : measured.shape[1]]
     there, limited = np.isfinite(measured), bound != 0
     redundancy = np.where(limited | ~there, np.nan, out.redundancy)
     checked = ~np.isnan(redundancy) & (out.control > 0)

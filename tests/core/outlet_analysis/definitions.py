@@ -17,8 +17,10 @@ from tests.core.outlet_analysis.random_accounts import (
     State,
     as_state,
     as_unknowns,
+    covariance_of,
     per_mole_fed,
     predicted,
+    purged_alone,
 )
 
 WELL_CONDITIONED = 1e8
@@ -81,9 +83,13 @@ def compare(problem: AccountProblem, state: State, found: Estimate) -> Compariso
             values[subject] = (value, u)
     known = set(found.readings.subjects)
     values = {subject: of for subject, of in values.items() if subject in known}
-    soft = [subject for subject, (_, u) in values.items() if u > 0]
-    exact = [subject for subject, (_, u) in values.items() if u == 0]
+    shared = {s for s, of in problem.series.items() if of.shared}
+    soft = [subject for subject, (_, u) in values.items() if u > 0 or subject in shared]
+    exact = [subject for subject in values if subject not in soft]
     measured, u = (np.array([values[s][k] for s in soft]) for k in (0, 1))
+    dense = covariance_of(problem, tuple(soft), dict(zip(soft, u.tolist(), strict=True)))
+    u = np.sqrt(np.diag(dense))
+    whitening = np.linalg.inv(np.linalg.cholesky(dense / u / u[:, None])) / u
 
     def readings(z: np.ndarray, subjects: list[Place]) -> np.ndarray:
         return readings_of(problem, unknowns, z, subjects)
@@ -97,7 +103,13 @@ def compare(problem: AccountProblem, state: State, found: Estimate) -> Compariso
     one = np.eye(len(z))
     held += [one[[k]] for k in np.flatnonzero(found.absent[0])]
     covariance = found.covariance[0]
-    told = found.told[0] & ~found.absent[0]
+    # What is purged and leaves nowhere else follows from the split.
+    back, alone = found.account.returned, purged_alone(problem)
+    follows = np.array(
+        [u.kind == "flow" and u.stream == back and u.index in alone for u in unknowns]
+    )
+    held += [one[[k]] for k in np.flatnonzero(follows)]
+    told = found.told[0] & ~found.absent[0] & ~follows
     held += [one[[k]] for k in np.flatnonzero(~found.told[0])]
     size = np.sqrt(np.maximum(np.diag(covariance), 0.0))
     size = np.where(size > 0, size, np.abs(z))
@@ -113,10 +125,10 @@ def compare(problem: AccountProblem, state: State, found: Estimate) -> Compariso
     start = np.where(found.told[0], as_unknowns(truth, unknowns), z)
 
     def residuals(t: np.ndarray) -> np.ndarray:
-        return (readings(z + free @ t, soft) - measured) / u
+        return np.asarray(whitening @ (readings(z + free @ t, soft) - measured))
 
     def jacobian(t: np.ndarray) -> np.ndarray:
-        return slopes(z + free @ t, soft) / u[:, None] @ free
+        return np.asarray(whitening @ slopes(z + free @ t, soft) @ free)
 
     here = jacobian(np.zeros(free.shape[1]))
     singular = np.linalg.svd(here / np.linalg.norm(here, axis=0), compute_uv=False)
@@ -130,7 +142,7 @@ def compare(problem: AccountProblem, state: State, found: Estimate) -> Compariso
     )
     account = found.account
     forms = np.concatenate(
-        [account.feed_map, account.outlet_map, account.extent_map, np.eye(len(z))[told]]
+        [account.fresh_map, account.leaving_map, account.extent_map, np.eye(len(z))[told]]
     )
     spread = np.sqrt(np.maximum(((forms @ covariance) * forms).sum(axis=1), 0.0))
     moved = np.abs(forms @ free @ other.x)

@@ -28,6 +28,7 @@ from tests.core.outlet_analysis.definitions import WELL_CONDITIONED, compare
 from tests.core.outlet_analysis.random_accounts import (
     State,
     can_be_sampled,
+    correlated,
     measured,
     noisy,
     one_sample,
@@ -46,13 +47,20 @@ FAR = 0.01
 
 
 def estimated(
-    count: int, rng: np.random.Generator, refused: Counter[str], *, samples: int = 1
+    count: int,
+    rng: np.random.Generator,
+    refused: Counter[str],
+    *,
+    samples: int = 1,
+    recycle: bool | None = None,
 ) -> Iterator[tuple[AccountProblem, State, Estimate]]:
     """Yield random accounts that have an answer, and count the refusals of the others."""
     made = 0
     while made < count:
-        problem, state = random_problem(rng)
+        problem, state = random_problem(rng, recycle=recycle)
         read = with_noise(problem, state, rng, samples)
+        if rng.random() < 0.3 and len(read.series) > 1:
+            read = correlated(rng, read)
         try:
             found = estimate(read)
         except Refused as refusal:
@@ -76,13 +84,23 @@ class Minima:
     difference: float = 0.0
     gradient: float = 0.0
     form: float = 0.0
+    recycles: int = 0
+    repeated: int = 0
+    """With some stream analysed more than once."""
+    by_pressure: int = 0
+    correlated: int = 0
     refused: Counter[str] = field(default_factory=Counter)
 
 
-def minima(count: int = 2000, seed: int = SEED) -> Minima:
+def minima(count: int = 2000, seed: int = SEED, recycle: bool | None = None) -> Minima:
     """Fit random accounts with SciPy too, from the true state and from the definitions."""
     of = Minima()
-    for problem, state, found in estimated(count, np.random.default_rng(seed), of.refused):
+    rng = np.random.default_rng(seed)
+    for problem, state, found in estimated(count, rng, of.refused, recycle=recycle):
+        of.recycles += problem.recycle is not None
+        of.repeated += any(len(stream.analyses) > 1 for stream in problem.streams)
+        of.by_pressure += bool(found.account.writer.by_pressure)
+        of.correlated += found.account.readings.correlated is not None
         one = compare(problem, state, found)
         of.form = max(of.form, one.form)
         if one.condition > WELL_CONDITIONED:
@@ -136,7 +154,9 @@ def settling(count: int = 600, seed: int = SEED) -> Settling:
             of.outcomes[came_of_it] += 1
             if came_of_it in ("under-determined", "assumed"):
                 of.not_settled.append(said)
-            for k in range(len(options) if len(options) > 1 else 0):
+            # With a split among the unknowns what tells enough is told by where it is looked at.
+            sure = len(options) > 1 and problem.recycle is None
+            for k in range(len(options) if sure else 0):
                 if outcome(few, options[:k] + options[k + 1 :], state) == "settled":
                     of.not_minimal.append(said)
     return of
@@ -281,6 +301,8 @@ def singles(count: int = 300, seed: int = SEED, samples: int = 6) -> Singles:
         read = with_noise(problem, state, rng, samples)
         if not read.series:
             continue
+        if rng.random() < 0.3 and len(read.series) > 1:
+            read = correlated(rng, read)
         for series in read.series.values():
             series.value[rng.random(samples) < 0.05] = np.nan
         wild = next(iter(read.series.values()))
@@ -289,10 +311,7 @@ def singles(count: int = 300, seed: int = SEED, samples: int = 6) -> Singles:
         found = estimate(read)
         natural = natural_size(found.account, np.nan_to_num(found.z))
         order = rng.permutation(samples)
-        moved = {
-            subject: Series(s.value[order], s.u[order], None if s.bound is None else s.bound[order])
-            for subject, s in read.series.items()
-        }
+        moved = {subject: _rows(s, order) for subject, s in read.series.items()}
         parts = [estimate(part).z for part in _in_parts(replace(read, series=moved), 4)]
         difference = np.abs(np.concatenate(parts) - found.z[order]) / natural[order]
         of.shuffled = max(of.shuffled, float(np.nan_to_num(difference).max()))
@@ -329,7 +348,8 @@ def singles(count: int = 300, seed: int = SEED, samples: int = 6) -> Singles:
 
 
 def _rows(of: Series, rows: slice | np.ndarray) -> Series:
-    return Series(of.value[rows], of.u[rows], None if of.bound is None else of.bound[rows])
+    bound = None if of.bound is None else of.bound[rows]
+    return replace(of, value=of.value[rows], u=of.u[rows], bound=bound)
 
 
 def _in_parts(problem: AccountProblem, size: int) -> Iterator[AccountProblem]:
@@ -338,12 +358,7 @@ def _in_parts(problem: AccountProblem, size: int) -> Iterator[AccountProblem]:
         part = slice(first, first + size)
         yield replace(
             problem,
-            series={
-                subject: Series(
-                    s.value[part], s.u[part], None if s.bound is None else s.bound[part]
-                )
-                for subject, s in problem.series.items()
-            },
+            series={subject: _rows(s, part) for subject, s in problem.series.items()},
         )
 
 

@@ -7,14 +7,15 @@ over flows, for holding the forms of the core against.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from typing import Any
 
 import numpy as np
 
 from core.constants import GAS_CONSTANT
-from core.outlet_analysis.account import AccountProblem, Unknown
+from core.errors import Refused
+from core.outlet_analysis.account import AccountProblem, Recycle, Unknown, build_account
 from core.outlet_analysis.correlations import Correlation
 from core.outlet_analysis.readings import ABOVE, BELOW, Series
 from core.reactions.reaction_set import Reaction, ReactionSet
@@ -28,6 +29,7 @@ from core.streams.metered import (
     Removal,
 )
 from core.substances.substance import Substance
+from tests.core.outlet_analysis.plant import with_streams
 
 Place = tuple[str | int, ...]
 
@@ -68,7 +70,7 @@ def random_reactions(rng: np.random.Generator, substances: int, reactions: int) 
 
 @dataclass
 class State:
-    """What is true of an account; per stream, feeds first."""
+    """What is true of an account; per stream, in the order of the problem."""
 
     feed: list[np.ndarray]
     extents: np.ndarray
@@ -79,6 +81,19 @@ class State:
     """Of each analysis of each stream."""
     temperatures: list[Any]
     pressures: list[Any]
+    around: list[np.ndarray] = field(default_factory=list)
+    """With a recycle the inlet, what is returned, what is purged, the products."""
+    split: Any = 1.0
+    """Purged over returned."""
+
+    @property
+    def flows(self) -> list[np.ndarray]:
+        return [*self.feed, *self.outlet, *self.around]
+
+    @property
+    def inlet(self) -> np.ndarray:
+        """What flows into the reactor."""
+        return self.around[0] if self.around else np.sum(self.feed, axis=0)
 
 
 def counted_in(problem: AccountProblem, stream: MeteredStream) -> np.ndarray:
@@ -98,10 +113,33 @@ def counted_in(problem: AccountProblem, stream: MeteredStream) -> np.ndarray:
 
 
 def may_hold(problem: AccountProblem, stream: MeteredStream) -> list[int]:
-    """What may leave in an outlet stream, of several."""
+    """What may leave in an outlet stream, of several, or around a reactor with recycle."""
     if stream.present is not None:
         return sorted(stream.present)
     return np.flatnonzero(counted_in(problem, stream)).tolist()
+
+
+def may_return(problem: AccountProblem, recycle: Recycle) -> list[int]:
+    """What may be returned, and purged."""
+    found: set[int] = set()
+    for stream in (recycle.returned, recycle.purge):
+        found |= set() if stream is None else set(may_hold(problem, stream))
+    return sorted(found)
+
+
+def purged_alone(problem: AccountProblem) -> list[int]:
+    """What is returned and may leave in the purge, but in no product."""
+    recycle = problem.recycle
+    if recycle is None or recycle.purge is None:
+        return []
+    places = {i for stream in recycle.products for i in may_hold(problem, stream)}
+    return [i for i in may_return(problem, recycle) if i not in places]
+
+
+def into_reactor(problem: AccountProblem) -> list[int]:
+    """Places of the streams that flow into the reactor."""
+    feeds = len(problem.feed)
+    return list(range(feeds)) if problem.recycle is None else [feeds + len(problem.outlet)]
 
 
 def shares_volume(problem: AccountProblem) -> bool:
@@ -110,7 +148,7 @@ def shares_volume(problem: AccountProblem) -> bool:
     return (
         len(liquids) == 1
         and liquids[0].density is None
-        and any(stream.phase == "liquid" for stream in problem.feed)
+        and any(problem.streams[g].phase == "liquid" for g in into_reactor(problem))
     )
 
 
@@ -118,11 +156,7 @@ def with_shared_volume(problem: AccountProblem, volumes: list[Any]) -> list[Any]
     """The volumes with that of the liquid leaving made up of those fed, where it is."""
     if not shares_volume(problem):
         return volumes
-    fed = sum(
-        volume
-        for stream, volume in zip(problem.feed, volumes, strict=False)
-        if stream.phase == "liquid"
-    )
+    fed = sum(volumes[g] for g in into_reactor(problem) if problem.streams[g].phase == "liquid")
     phases = [stream.phase for stream in problem.outlet]
     made = list(volumes)
     made[len(problem.feed) + phases.index("liquid")] = fed
@@ -137,9 +171,7 @@ def predicted(problem: AccountProblem, state: State) -> dict[Place, Any]:
     """
     masses = problem.reactions.molar_masses
     found: dict[Place, Any] = {}
-    for g, (stream, moles) in enumerate(
-        zip((*problem.feed, *problem.outlet), (*state.feed, *state.outlet), strict=True)
-    ):
+    for g, (stream, moles) in enumerate(zip(problem.streams, state.flows, strict=True)):
         volume = state.volumes[g]
         own = counted_in(problem, stream)
         whole = (moles.T * own).T
@@ -224,13 +256,18 @@ def shown(meter: FlowReading, seen: np.ndarray, masses: np.ndarray) -> Any:
 
 
 def as_state(problem: AccountProblem, unknowns: Sequence[Unknown], z: np.ndarray) -> State:
-    """The unknowns of an estimate as a state, by their kind; ``z`` as in :func:`predicted`."""
+    """The unknowns of an estimate as a state, by their kind; ``z`` as in :func:`predicted`.
+
+    What is purged and leaves nowhere else follows from the split, whatever ``z`` has.
+    """
     feeds, count = len(problem.feed), len(problem.reactions.substances)
-    streams = feeds + len(problem.outlet)
+    outlets = range(feeds, feeds + len(problem.outlet))
+    streams = len(problem.streams)
     several = z.shape[1:]
     flows = [np.zeros((count, *several), dtype=z.dtype) for _ in range(streams)]
     extents = np.zeros((len(problem.reactions.nu), *several), dtype=z.dtype)
-    scales: list[list[Any]] = [[1.0] * len(s.analyses) for s in (*problem.feed, *problem.outlet)]
+    split: Any = 1.0
+    scales: list[list[Any]] = [[1.0] * len(s.analyses) for s in problem.streams]
     further: dict[str, list[Any]] = {
         "volume": [1.0] * streams,
         "temperature": [300.0] * streams,
@@ -241,86 +278,112 @@ def as_state(problem: AccountProblem, unknowns: Sequence[Unknown], z: np.ndarray
             flows[unknown.stream][unknown.index] = value
         elif unknown.kind == "extent":
             extents[unknown.index] = value
+        elif unknown.kind == "split":
+            split = value
         elif unknown.kind == "scale":
             scales[unknown.stream][unknown.index] = value
         else:
             further[unknown.kind][unknown.stream] = value
-    left = sum(flows[:feeds]) + problem.reactions.nu.T @ extents
-    if len(problem.outlet) == 1:
+    fresh = sum(flows[:feeds])
+    leaving = fresh + problem.reactions.nu.T @ extents
+    left = leaving
+    if problem.recycle is not None:
+        inlet = outlets.stop
+        back, first = inlet + 1, streams - len(problem.recycle.products)
+        for i in purged_alone(problem):
+            flows[back][i] = leaving[i] / split
+        flows[inlet] = fresh + flows[back]
+        left = leaving + flows[back]
+        rest = leaving
+        if problem.recycle.purge is not None:
+            flows[back + 1] = split * flows[back]
+            rest = leaving - flows[back + 1]
+        shared_out(problem, range(first, streams), rest, flows)
+    if len(outlets) == 1:
         flows[feeds] = left
     else:
-        # The last stream that may hold a substance takes what the others leave over.
-        for i in range(count):
-            holders = [g for g, s in enumerate(problem.outlet, feeds) if i in may_hold(problem, s)]
-            if holders:
-                others = sum(flows[g][i] for g in holders[:-1])
-                flows[holders[-1]][i] = left[i] - others
+        shared_out(problem, outlets, left, flows)
     return State(
         flows[:feeds],
         extents,
-        flows[feeds:],
+        flows[feeds : outlets.stop],
         with_shared_volume(problem, further["volume"]),
         scales,
         further["temperature"],
         further["pressure"],
+        flows[outlets.stop :],
+        split,
     )
+
+
+def shared_out(
+    problem: AccountProblem, streams: Sequence[int], left: np.ndarray, flows: list[np.ndarray]
+) -> None:
+    """Have the last stream that may hold a substance take what the others leave over."""
+    for i in range(len(left)):
+        holders = [g for g in streams if i in may_hold(problem, problem.streams[g])]
+        if holders:
+            flows[holders[-1]][i] = left[i] - sum(flows[g][i] for g in holders[:-1])
 
 
 def as_unknowns(state: State, unknowns: Sequence[Unknown]) -> np.ndarray:
     """A state as unknowns of an estimate."""
-    flows = [*state.feed, *state.outlet]
     of = {
         "volume": state.volumes,
         "temperature": state.temperatures,
         "pressure": state.pressures,
     }
-    return np.array(
-        [
-            flows[u.stream][u.index]
-            if u.kind == "flow"
-            else state.extents[u.index]
-            if u.kind == "extent"
-            else state.scales[u.stream][u.index]
-            if u.kind == "scale"
-            else of[u.kind][u.stream]
-            for u in unknowns
-        ],
-        dtype=float,
-    )
+
+    def value(u: Unknown) -> Any:
+        if u.kind == "flow":
+            return state.flows[u.stream][u.index]
+        if u.kind == "extent":
+            return state.extents[u.index]
+        if u.kind == "scale":
+            return state.scales[u.stream][u.index]
+        return state.split if u.kind == "split" else of[u.kind][u.stream]
+
+    return np.array([value(u) for u in unknowns], dtype=float)
 
 
 def per_mole_fed(state: State, key: int) -> State:
     """The state for each mole of key fed."""
-    fed = float(sum(flows[key] for flows in state.feed))
+    fed = float(state.inlet[key])
     return replace(
         state,
         feed=[flows / fed for flows in state.feed],
         extents=state.extents / fed,
         outlet=[flows / fed for flows in state.outlet],
         volumes=[volume / fed for volume in state.volumes],
+        around=[flows / fed for flows in state.around],
     )
 
 
-def random_problem(rng: np.random.Generator) -> tuple[AccountProblem, State]:
+def random_problem(
+    rng: np.random.Generator, *, recycle: bool | None = None
+) -> tuple[AccountProblem, State]:
     """A random problem, its readings blank, and its true state.
 
     One to three feed streams and one or two outlet streams, gas or liquid, of
     substances of which some are stated to be of another phase; one to three
     reactions; flow or batch; with meters of every kind, some of them by
     differential pressure, or without any; analysed up to three times, in
-    every basis, with removals, lumps, balances and normalised values.
+    every basis, with removals, lumps, balances and normalised values; one in five
+    with a recycle, or as ``recycle`` says.
     """
     while True:
-        problem, state = _drawn(rng)
+        has = bool(rng.random() < 0.2) if recycle is None else recycle
+        made = _drawn(rng, has)
+        if made is None:
+            continue
+        problem, state = made
         if can_be_sampled(problem, state):
             return problem, state
 
 
 def can_be_sampled(problem: AccountProblem, state: State) -> bool:
     """Whether something is left to analyse of what flows in every stream."""
-    for stream, flows in zip(
-        (*problem.feed, *problem.outlet), (*state.feed, *state.outlet), strict=True
-    ):
+    for stream, flows in zip(problem.streams, state.flows, strict=True):
         own = counted_in(problem, stream)
         for removed in [(), *(analysis.removed for analysis in stream.analyses)]:
             kept = own.copy()
@@ -330,7 +393,8 @@ def can_be_sampled(problem: AccountProblem, state: State) -> bool:
     return True
 
 
-def _drawn(rng: np.random.Generator) -> tuple[AccountProblem, State]:
+def _drawn(rng: np.random.Generator, recycle: bool) -> tuple[AccountProblem, State] | None:
+    """A problem and its state; None where something could not leave."""
     substances = int(rng.integers(4, 9))
     reactions = random_reactions(rng, substances, int(rng.integers(1, 4)))
     liquid = rng.random() < 0.3
@@ -361,6 +425,13 @@ def _drawn(rng: np.random.Generator) -> tuple[AccountProblem, State]:
         limits = [left[i] / -row[i] for i in np.flatnonzero(row < 0)]
         extents[j] = rng.uniform(0.1, 0.6) * max(0.0, min(limits))
     left = room + extents @ reactions.nu
+    around, returned, split, more = None, np.zeros(substances), 1.0, list[np.ndarray]()
+    if recycle:
+        drawn = _around(rng, phase, reactions, left)
+        if drawn is None:
+            return None
+        around, returned, split, more = drawn
+        left = left + returned
     outlet: list[MeteredStream] = []
     true_outlet: list[np.ndarray] = []
     if outlets == 1:
@@ -383,8 +454,8 @@ def _drawn(rng: np.random.Generator) -> tuple[AccountProblem, State]:
                 _metered(rng, f"outlet{q}", phase(), held.tolist(), reactions, outlet=True)
             )
     batch = bool(rng.random() < 0.2)
-    problem = AccountProblem(reactions, 0, tuple(streams), tuple(outlet), batch)
-    count = feeds + outlets
+    problem = AccountProblem(reactions, 0, tuple(streams), tuple(outlet), batch, recycle=around)
+    count = len(problem.streams)
     state = State(
         true_feed,
         extents,
@@ -393,8 +464,62 @@ def _drawn(rng: np.random.Generator) -> tuple[AccountProblem, State]:
         [[scale, 1.02 * scale, 0.97 * scale] for scale in rng.uniform(0.9, 1.1, count)],
         list(rng.uniform(300.0, 600.0, count)),
         list(rng.uniform(1e5, 2e6, count)),
+        [] if around is None else [room + returned, returned, *more],
+        split,
     )
     return problem, state
+
+
+def _around(
+    rng: np.random.Generator, phase: Callable[[], Any], reactions: ReactionSet, leaving: np.ndarray
+) -> tuple[Recycle, np.ndarray, float, list[np.ndarray]] | None:
+    """Streams around a reactor with recycle, what is returned, the split, purge and products."""
+    every = list(range(len(leaving)))
+
+    def stream(side: str, quiet: float) -> MeteredStream:
+        made = _metered(rng, side, phase(), every, reactions, outlet=bool(rng.random() < 0.5))
+        made = replace(made, present=None)
+        if rng.random() < quiet:
+            made = replace(
+                made, flows=(), analyses=(), temperature=None, pressure=None, density=None
+            )
+        return made
+
+    kind = str(rng.choice(["purge and product", "purge", "product"]))
+    count = 0 if kind == "purge" else int(rng.choice([1, 2], p=[0.8, 0.2]))
+    recycle = Recycle(
+        stream("inlet", 0.5),
+        stream("recycle", 0.2),
+        None if kind == "product" else stream("purge", 0.3),
+        tuple(stream(f"product{q}", 0.3) for q in range(count)),
+    )
+    problem = AccountProblem(reactions, 0, (), (), recycle=recycle)
+    held = np.isin(every, may_return(problem, recycle))
+    alone = np.isin(every, purged_alone(problem))
+    places = [np.isin(every, may_hold(problem, product)) for product in recycle.products]
+    there = leaving > 0
+    if np.any(there & ~alone & ~np.any(places, axis=0)):
+        return None
+    size = len(leaving)
+    returned = leaving * rng.uniform(0.1, 8.0, size) + rng.uniform(0, 0.5, size)
+    returned = np.where(there & held, returned, 0.0)
+    split, purged = 1.0, np.zeros(size)
+    if recycle.purge is not None:
+        split = float(10 ** rng.uniform(-2.5, 0.5))
+        both = there & held & ~alone
+        if both.any():
+            # No more is purged than leaves.
+            split = float(rng.uniform(0.1, 0.9) * np.min(leaving[both] / returned[both]))
+        returned = np.where(alone, leaving / split, returned)
+        purged = split * returned
+    rest, products = np.where(alone, 0.0, leaving - purged), []
+    for q, place in enumerate(places):
+        last = ~np.any(places[q + 1 :], axis=0) if q + 1 < count else np.ones(size, dtype=bool)
+        part = np.where(place, np.where(last, rest, rng.uniform(0.1, 0.9, size) * rest), 0.0)
+        products.append(part)
+        rest = rest - part
+    purge = [] if recycle.purge is None else [purged]
+    return recycle, returned, split, [*purge, *products]
 
 
 def _metered(
@@ -497,7 +622,7 @@ def mapped(problem: AccountProblem, change: Callable[[Measurement], Measurement]
     def of(measurement: Measurement | None) -> Measurement | None:
         return None if measurement is None else change(measurement)
 
-    def stream(old: MeteredStream) -> MeteredStream:
+    def stream(_: int, old: MeteredStream) -> MeteredStream:
         analyses = tuple(
             replace(
                 analysis,
@@ -516,12 +641,7 @@ def mapped(problem: AccountProblem, change: Callable[[Measurement], Measurement]
             density=of(old.density),
         )
 
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-        series={},
-    )
+    return replace(with_streams(problem, stream), series={})
 
 
 def measured(
@@ -582,7 +702,7 @@ def with_noise(
     """
     fractions = {
         component.measurement.subject
-        for stream in (*problem.feed, *problem.outlet)
+        for stream in problem.streams
         for analysis in stream.analyses
         if not analysis.normalised
         for component in analysis.components
@@ -640,12 +760,16 @@ def with_shared(rng: np.random.Generator, series: dict[Place, Series]) -> dict[P
     return made
 
 
-def covariance_of(problem: AccountProblem, subjects: tuple[Place, ...]) -> np.ndarray:
-    """The covariance of the readings, written from the definition."""
+def covariance_of(
+    problem: AccountProblem, subjects: tuple[Place, ...], u: Mapping[Place, float] | None = None
+) -> np.ndarray:
+    """The covariance of the readings, written from the definition; ``u`` of their own errors."""
     place = {subject: k for k, subject in enumerate(subjects)}
-    own = np.array([problem.series[s].u[0] for s in subjects])
+    own = np.array([problem.series[s].u[0] if u is None else u[s] for s in subjects])
     matrix = np.diag(own**2)
     for said in problem.correlations:
+        if not set(said.readings) <= set(place):
+            continue
         i, j = (place[s] for s in said.readings)
         matrix[i, j] = matrix[j, i] = said.coefficient * own[i] * own[j]
     for i, a in enumerate(subjects):
@@ -654,3 +778,28 @@ def covariance_of(problem: AccountProblem, subjects: tuple[Place, ...]) -> np.nd
                 other = problem.series[b].shared.get(instrument, 0.0)
                 matrix[i, j] += float(part) * float(other)
     return matrix
+
+
+def correlated(rng: np.random.Generator, problem: AccountProblem) -> AccountProblem:
+    """The problem with some of its proper readings correlated, by coefficients and instruments.
+
+    The parts that an instrument shares come on top of what was drawn: no matter for a minimum.
+    """
+    series = dict(problem.series)
+    try:
+        used = set(build_account(problem).readings.subjects)
+    except Refused:
+        return problem
+    proper = [
+        subject
+        for subject, of in series.items()
+        if subject in used and of.bound is None and (of.u > 0).all() and np.isfinite(of.value).all()
+    ]
+    if len(proper) < 2:
+        return problem
+    stated = ()
+    if rng.random() < 0.8:
+        stated = random_correlations(rng, proper)
+    if rng.random() < 0.5:
+        series |= with_shared(rng, {subject: series[subject] for subject in proper})
+    return replace(problem, series=series, correlations=stated)

@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from core.errors import Fault, Refused
-from core.outlet_analysis.account import AccountProblem
+from core.outlet_analysis.account import AccountProblem, describe_stream
 from core.outlet_analysis.observability import USEFUL
 from core.outlet_analysis.reconciliation import estimate
 from core.streams.metered import (
@@ -20,6 +20,7 @@ from core.streams.metered import (
     Measurement,
     MeteredStream,
 )
+from tests.core.outlet_analysis.plant import with_streams
 from tests.core.outlet_analysis.random_accounts import Place, State, measured, predicted
 
 MOLES = "(?:flow|amount)"
@@ -27,7 +28,7 @@ METERED = "flow|mass flow|volumetric flow|amount|mass|volume"
 NAMED = re.compile(
     r"the (?:fraction|concentration) of (?P<value>\S+) in (?:(?:an|the) analysis|analysis"
     r" (?P<which>\d+)) of (?P<analysed>.+)"
-    rf"|the {MOLES} of (?P<fed>\S+), as a feed stream of its own"
+    rf"|the {MOLES} of (?P<fed>\S+), as a (?:fresh )?feed stream of its own"
     r"|the (?P<part>flow|mass flow|amount|mass) of (?P<partly>.+) as analysed"
     rf"|the total (?P<kind>{METERED}) of (?P<whole>.+)"
     r"|the density of (?P<dense>.+)"
@@ -45,9 +46,8 @@ KINDS: dict[str, Any] = {
 }
 
 
-def place(words: str) -> tuple[str, int]:
-    side, *number = words.removeprefix("the ").replace(" stream", "").split(" ")
-    return side, int(number[0]) - 1 if number else 0
+def place(problem: AccountProblem, words: str) -> int:
+    return [describe_stream(problem, g) for g in range(len(problem.streams))].index(words)
 
 
 def removes(stream: MeteredStream, substance: int) -> bool:
@@ -55,8 +55,13 @@ def removes(stream: MeteredStream, substance: int) -> bool:
     return any(r.substance == substance and r.residual == 0 for r in removed)
 
 
-def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
-    """The problem with the reading stated that the words suggest."""
+def with_reading(
+    problem: AccountProblem, words: str, asked: AccountProblem | None = None
+) -> AccountProblem:
+    """The problem with the reading stated that the words suggest.
+
+    They call the streams as those of the problem ``asked`` about.
+    """
     found = NAMED.fullmatch(words)
     assert found is not None, words
     of, new = found.groupdict(), Measurement(1.0, 0.01, ("new", words))
@@ -80,13 +85,13 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
         )
         return replace(problem, feed=(*feed, own))
     assert where is not None
-    side, q = place(where)
-    streams = list(getattr(problem, side))
-    stream = streams[q]
+    asked = asked or problem
+    subject = asked.streams[place(asked, where)].subject
+    (stream,) = (s for s in problem.streams if s.subject == subject)
     if of["value"]:
         component = Component({names.index(of["value"]): 1.0}, new)
         basis: Any = "mass" if stream.phase == "liquid" else "mole"
-        analyses = list(stream.analyses or (Analysis(basis, (), (side, "analysis")),))
+        analyses = list(stream.analyses or (Analysis(basis, (), (*subject, "analysis")),))
         # A number is said where there are several.
         assert (of["which"] is None) == (len(analyses) == 1)
         k = int(of["which"] or 1) - 1
@@ -112,8 +117,7 @@ def with_reading(problem: AccountProblem, words: str) -> AccountProblem:
         kind = KINDS[of["part"] or of["kind"]]
         meter = FlowReading(kind, new, as_analysed=of["partly"] is not None)
         changed = replace(stream, flows=(*stream.flows, meter))
-    streams[q] = changed
-    return replace(problem, **{side: tuple(streams)})
+    return with_streams(problem, lambda _, of: changed if of is stream else of)
 
 
 def thinned(
@@ -128,7 +132,7 @@ def thinned(
     substances = tuple(replace(substance, phase=None) for substance in of.substances)
     problem = replace(problem, reactions=replace(of, substances=substances))
 
-    def stream(of: MeteredStream) -> MeteredStream:
+    def stream(g: int, of: MeteredStream) -> MeteredStream:
         share = 0.6 / max(1, len(of.analyses))
         kept = [
             replace(a, components=tuple(c for c in a.components if rng.random() < share))
@@ -140,18 +144,14 @@ def thinned(
             flows = [f for f in of.flows if f.substance is not None and rng.random() < 0.7]
         else:
             flows = [f for f in of.flows if f.substance is None and rng.random() < 0.7][:1]
-        if of in problem.feed:
+        if g < len(problem.feed):
             analyses = [
                 replace(a, removed=tuple(replace(removal, residual=0.0) for removal in a.removed))
                 for a in analyses
             ]
         return replace(of, analyses=tuple(analyses), flows=tuple(flows))
 
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-    )
+    return with_streams(problem, stream)
 
 
 def fault_of(problem: AccountProblem) -> Fault | None:
@@ -177,7 +177,7 @@ def split_off(state: State, substance: int, problem: AccountProblem) -> State:
         else flows
         for stream, flows in zip(problem.feed, state.feed, strict=True)
     ]
-    own = sum(state.feed) - sum(feed)
+    own = np.sum(state.feed, axis=0) - np.sum(feed, axis=0)
     place = len(problem.feed)
 
     def more(of: list[Any], new: Any = 1.0) -> list[Any]:
@@ -197,8 +197,9 @@ def with_readings(
     problem: AccountProblem, options: list[str], state: State | None = None
 ) -> AccountProblem:
     """The problem with the readings that are suggested, and the values of ``state``."""
+    asked = problem
     for words in options:
-        before, problem = problem, with_reading(problem, words)
+        before, problem = problem, with_reading(problem, words, asked)
         if state is not None:
             if len(problem.feed) > len(before.feed):
                 state = split_off(state, next(iter(problem.feed[-1].present or ())), before)

@@ -233,8 +233,8 @@ def test_liquid_volume_of_a_series_where_the_readings_tell_it() -> None:
         account(reactions, "C2H4O", feed, outlet, series={("feed", "density"): density})
     )
     mass = np.array([1.0, 50.0, 0.0]) @ reactions.molar_masses
-    for side in ("feed", "outlet"):
-        volume = found.liquid_volume(side)  # type: ignore[arg-type]
+    for streams in (found.account.inlet, found.account.outlet):
+        volume = found.liquid_volume(streams)
         assert volume is not None
         assert_allclose(volume[0], mass / 1000, rtol=0.05)
     # Without the density the ratio of concentrations still tells the conversion, and the one
