@@ -51,6 +51,8 @@ it is damped."""
 LEAST_DAMPING = 1e-3
 MOST_DAMPING = 1e8
 ROUNDING_GAP = 1e-9
+ROUNDING_READING = 1e-15
+"""What rounding leaves of the difference between a reading and what the forms make of it."""
 ROUNDING_VARIANCE = 1e-6
 """How far rounding may put a variance below zero, of what it would be with all others known."""
 SINGULAR = 1e13
@@ -313,10 +315,12 @@ class _Hard:
 
     slope: FloatArray
     compliance: FloatArray
+    rounding: FloatArray
+    """What rounding of the misses leaves of the merit, (N,)."""
 
     def samples(self, rows: IntArray) -> _Hard:
         """Return that of the samples marked."""
-        return _Hard(self.slope[rows], self.compliance[rows])
+        return _Hard(self.slope[rows], self.compliance[rows], self.rounding[rows])
 
     def penalty(self, gap: FloatArray) -> FloatArray:
         """Return what the misses ``gap`` count, shape (N,)."""
@@ -439,6 +443,8 @@ def least_squares(fit: Fit, start: FloatArray, natural: FloatArray) -> Solution:
             gain *= length
         before, after = _merit(fit, found, next_.hard), _merit(fit, tried, next_.hard)
         enough = before - SUFFICIENT * gain + ROUNDING * (1 + before)
+        if next_.hard is not None:
+            enough += next_.hard.rounding
         better: BoolArray = np.asarray(tried.inside & next_.sound & (after <= enough))
         plain = damping == 0
         worse = np.flatnonzero(plain & next_.sound & ~better)
@@ -548,7 +554,11 @@ def _hard(fit: Fit, multipliers: FloatArray) -> _Hard:
     if fit.mixture is not None:
         size = (np.abs(fit.mixture.forward) @ size[:, :, None])[:, :, 0]
     rounding = (ROUNDING_GAP * size) ** 2
-    return _Hard(slope, np.where(near, np.where(near, fit.compliance, 0.0) + rounding, 0.0))
+    return _Hard(
+        slope,
+        np.where(near, np.where(near, fit.compliance, 0.0) + rounding, 0.0),
+        (ROUNDING_READING * slope * size).sum(axis=-1),
+    )
 
 
 def _merit(fit: Fit, of: Evaluation, hard: _Hard | None) -> FloatArray:
