@@ -77,7 +77,9 @@ def read_as(
     return mapped(problem, put)
 
 
-def silent_accounts(count: int, *, draws: int, seed: int) -> tuple[list[tuple[float, float]], int]:
+def silent_accounts(
+    count: int, *, draws: int, seed: int, recycle: bool | None = None
+) -> tuple[list[tuple[float, float]], int]:
     """What linear propagation misses where no doubt is told of it, and how often it is.
 
     For each of ``count`` random accounts u of the draws over linear u, less 1,
@@ -88,7 +90,7 @@ def silent_accounts(count: int, *, draws: int, seed: int) -> tuple[list[tuple[fl
     found_gaps: list[tuple[float, float]] = []
     told = 0
     while len(found_gaps) < count:
-        problem, state = random_problem(rng)
+        problem, state = random_problem(rng, recycle=recycle)
         truth = predicted(problem, state)
         size = rng.choice([0.02, 0.06, 0.15])
         u = {s: abs(v or 0.1) * rng.uniform(0.2, 1.0) * size for s, v in truth.items()}
