@@ -30,7 +30,7 @@ from core.outlet_analysis.mixture import draw_factor
 from core.outlet_analysis.preparation import BLOCK, prepare
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.readings import ABOVE, BELOW
-from core.outlet_analysis.solving import Fitted, fit_block
+from core.outlet_analysis.solving import Fitted, fit_block, still_open
 from core.streams.metered import Measurement
 
 DEFAULT_DRAWS = 10_000
@@ -197,12 +197,19 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
     account, coverage = found.account, found.account.problem.coverage
     _check(account, sampling, coverage)
     z = np.full((sampling.draws, len(account.unknowns)), np.nan)
+    # With a split among the unknowns a first guess of its own might lead a draw elsewhere.
+    start = found.z if account.split >= 0 else None
     for rows, series in drawn_blocks(account, sampling):
         block = z[rows]
-        for outcome in fit_block(prepare(series, slice(0, len(block))), account.reported):
-            if isinstance(outcome, Fitted):
-                block[outcome.rows] = outcome.z
-                block[np.ix_(outcome.rows, outcome.absent)] = 0.0
+        ready = prepare(series, slice(0, len(block)), start)
+        for outcome in fit_block(ready, account.reported):
+            if not isinstance(outcome, Fitted):
+                continue
+            block[outcome.rows] = outcome.z
+            block[np.ix_(outcome.rows, outcome.absent)] = 0.0
+            if account.split >= 0:
+                lost = still_open(account, outcome, ready.active[outcome.rows])
+                block[outcome.rows[lost]] = np.nan
     kept: BoolArray = np.asarray(np.isfinite(z).all(axis=1))
     draws = Draws(sampling, coverage, kept, z[kept])
     share = draws.left_out / sampling.draws

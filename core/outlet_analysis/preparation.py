@@ -69,6 +69,8 @@ class Block:
     others : ndarray, shape (N, k, n)
         Where to start from where the first guess leads nowhere; k is 0 without a split.
     correlated : Correlated or None
+    start : ndarray, shape (n,), or None
+        Where to start every sample, in place of a first guess.
     """
 
     account: Account
@@ -82,6 +84,7 @@ class Block:
     near: FloatArray
     others: FloatArray
     correlated: Correlated | None = None
+    start: FloatArray | None = None
 
     @property
     def exact(self) -> BoolArray:
@@ -124,8 +127,11 @@ class Group:
     others: tuple[FloatArray, ...]
 
 
-def prepare(account: Account, rows: slice | IntArray) -> Block:
-    """Return the samples ``rows`` of the account's readings, ready to be fitted."""
+def prepare(account: Account, rows: slice | IntArray, start: FloatArray | None = None) -> Block:
+    """Return the samples ``rows`` of the account's readings, ready to be fitted.
+
+    They are started at ``start``, shape (n,), where given.
+    """
     readings = account.readings
     value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
     active = np.isfinite(value)
@@ -168,6 +174,8 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
     per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
     nominal = _nominal(block, per_mole)
     block = replace(block, nominal=nominal, near=nominal, others=nominal[:, None][:, :0])
+    if start is not None:
+        return replace(block, near=np.tile(start, (len(measured), 1)), start=start)
     return block if account.split < 0 else _split_guessed(block, per_mole)
 
 
@@ -346,6 +354,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
             block.near[rows],
             block.others[rows],
             None if block.correlated is None else block.correlated.samples(rows),
+            block.start,
         )
     slopes, right, u = linearised(block)
     exact = np.flatnonzero(kind == 1)
@@ -395,9 +404,12 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
         START_RIDGE,
         start_mixture,
     )
-    if block.account.split >= 0:
-        start = _not_far(block, start)
-    start = _inside(block, start)
+    if block.start is not None:
+        start = np.tile(block.start, (len(start), 1))
+    else:
+        if block.account.split >= 0:
+            start = _not_far(block, start)
+        start = _inside(block, start)
     others = [_inside(block, block.others[:, k]) for k in range(block.others.shape[1])]
     judged = start if block.account.split < 0 else meeting_equations(block.account, start)
     natural = natural_size(block.account, start)

@@ -110,6 +110,14 @@ def test_where_no_doubt_is_told_linear_propagation_holds_within_2_percent() -> N
     assert told > 0
 
 
+def test_draws_of_a_recycle_stay_with_its_estimate() -> None:
+    # Of the second account first guesses of their own led half the draws to a split of 1e16.
+    draws = 5000
+    gaps, _ = silent_accounts(3, draws=draws, seed=2, recycle=True)
+    assert max(abs(of_u) for of_u, _ in gaps) < 0.02 + 4 / (2 * draws) ** 0.5
+    assert max(abs(of_mean) for _, of_mean in gaps) < 0.02 + 4 / draws**0.5
+
+
 def test_what_is_passed_over_by_the_bound_is_straight() -> None:
     rng = np.random.default_rng(8)
     passed = looked_at = 0
