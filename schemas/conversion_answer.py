@@ -79,7 +79,9 @@ class ReconciledReadingSchema(OpenSchema):
     )
     redundancy = number("0: no other reading checks it; 1: it is known from the others.")
     smallest_detectable_error = number(
-        "Found nine times in ten at one false alarm in twenty; null without redundancy."
+        "An error of this size takes the reading's own test beyond 1.96, where one in twenty sound"
+        " readings is too, nine times in ten; suspects are named at a higher limit, which all tests"
+        " share. Null without redundancy."
     )
     suspect = fields.Boolean(required=True)
     bound = fields.String(

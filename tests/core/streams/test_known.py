@@ -1,6 +1,6 @@
-from dataclasses import replace
-
 """Metered streams read directly: what they make together, and what is not known of it."""
+
+from dataclasses import replace
 
 import numpy as np
 import pytest
