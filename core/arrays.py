@@ -1,4 +1,4 @@
-"""The two array types that the core's signatures speak of."""
+"""The array types that the core's signatures speak of."""
 
 from typing import TypeAlias
 
@@ -7,3 +7,4 @@ from numpy.typing import NDArray
 
 FloatArray: TypeAlias = NDArray[np.float64]
 BoolArray: TypeAlias = NDArray[np.bool_]
+IntArray: TypeAlias = NDArray[np.intp]

@@ -24,10 +24,26 @@ NOTES: dict[str, Entry] = {
         "The default of common practice exceeds the reading itself, as it does for traces. State"
         " 'u'.",
     ),
-    "instrument-taken-as-independent": Entry(
-        "Shared error taken as independent",
-        "Readings of one instrument share an error, and this release takes their errors as"
-        " independent of each other.",
+    "instrument-shares-nothing": Entry(
+        "Instrument that shares no error",
+        "Several readings name one instrument and do not state 'u_shared', the part of their error"
+        " that is common to them. Their errors count as independent within a sample.",
+    ),
+    "linear-propagation-doubtful": Entry(
+        "Linear propagation is in doubt",
+        "The account is curved over the uncertainties of its readings, so that terms of second"
+        " order shift or widen a result by more than a tenth of u; or its uncertainty rests on"
+        " non-detects, which are not distributed normally. Ask for the method 'monte-carlo'.",
+    ),
+    "draws-left-out": Entry(
+        "Draws left out",
+        "Some draws of the readings have no account that comes near them with every total positive,"
+        " because an uncertainty is large beside its reading. They are left out and counted.",
+    ),
+    "mean-of-draws-differs": Entry(
+        "Mean of the draws off the estimate",
+        "The draws' mean conversion is off the estimate by more than a tenth of u. The value given"
+        " is the estimate from the readings as they are.",
     ),
     "uncertainty-not-used": Entry(
         "Uncertainties not carried through",
@@ -331,7 +347,7 @@ NOTES: dict[str, Entry] = {
     ),
     "distribution-not-told": Entry(
         "Distribution not told",
-        "The readings do not tell how a substance is shared out among the outlet streams.",
+        "The readings do not tell how a substance is shared out among the streams that leave.",
     ),
     "analysis-sum": Entry(
         "Analysis off 100 %",

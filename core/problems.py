@@ -263,6 +263,11 @@ _SUBSTANCES_AND_REACTIONS: dict[str, Entry] = {
         "Unknown reaction",
         "No reaction of the request has this id. Ids default to r1, r2, ... by place.",
     ),
+    "unknown-reading": Entry(
+        "Unknown reading",
+        "What is named is no reading of the request, or one that the account does not use. A"
+        " reading is named by its JSON Pointer in the request.",
+    ),
     "unknown-key": Entry(
         "Unknown key reactant",
         "The key is none of the request's substances. Name a reactant that the feed holds.",
@@ -287,7 +292,7 @@ _SUBSTANCES_AND_REACTIONS: dict[str, Entry] = {
 _STREAMS: dict[str, Entry] = {
     "not-in-account": Entry(
         "Substance not in the account",
-        "The outlet names a substance that stands in no reaction and that no feed stream holds."
+        "A stream names a substance that stands in no reaction and that no feed stream holds."
         " Correct its name, or state it in the feed.",
     ),
     "stream-form": Entry(
@@ -445,6 +450,32 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
         "Exact readings contradict each other",
         "Readings stated as exact (u = 0) cannot all be true. Give at least one of them an"
         " uncertainty, or correct it.",
+    ),
+    "correlation-not-usable": Entry(
+        "Correlation not usable",
+        "A correlation is one of two different readings, stated once, each with an error of its"
+        " own: not of a limit, nor of what is exact. Correct it, or leave it out.",
+    ),
+    "correlations-impossible": Entry(
+        "Correlations impossible together",
+        "No errors can have these coefficients together: some combination of the readings would"
+        " have a variance below zero. Pairs that are not stated count as 0; state them all.",
+    ),
+    "fully-correlated-readings": Entry(
+        "Readings correlated fully",
+        "Errors are correlated so fully that a combination of the readings, such as their sum, has"
+        " none, and the account has another value of it. Give the readings a part of their own,"
+        " correct a value, or leave one out.",
+    ),
+    "too-few-draws": Entry(
+        "Too few draws for the coverage",
+        "Hardly any draw lies beyond the ends of a coverage interval this wide. Draw more, or ask"
+        " for less coverage.",
+    ),
+    "draws-without-account": Entry(
+        "Too many draws without an account",
+        "Readings drawn within their uncertainties leave too often no account with every total"
+        " positive. State smaller uncertainties, or ask for linear propagation.",
     ),
     "not-converged": Entry(
         "Estimation did not converge",

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
@@ -204,6 +205,7 @@ class AnalysisReader:
                     found,
                     value=found.value / molar_mass,
                     u=None if found.u is None else found.u / molar_mass,
+                    u_shared=None if found.u_shared is None else found.u_shared / molar_mass,
                 )
             # By mass per normal volume an analyser of gas says the same as in ppm.
             gas = phase == "gas" and found.dimension in ("dimensionless", "mass_per_amount")
@@ -222,7 +224,10 @@ class AnalysisReader:
 
     def _below_zero(self, found: Measured, raw: RawQuantity, pointer: str, kind: str) -> bool:
         """Refuse a reading further below zero than an analyser's zero drifts."""
-        u = DEFAULT_UNCERTAINTIES[kind].of(0.0) if found.u is None else found.u
+        if found.u is None and found.u_shared is None:
+            u = DEFAULT_UNCERTAINTIES[kind].of(0.0)
+        else:
+            u = math.hypot(found.u or 0.0, found.u_shared or 0.0)
         if found.value >= -ZERO_DRIFT * u:
             return False
         self.reader.fault(

@@ -2,30 +2,38 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from typing import Any
+from collections.abc import Callable, Sequence
+from functools import partial
+from typing import Any, TypeAlias
 
 import numpy as np
 from marshmallow import fields
 from scipy.special import ndtri
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Note
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
-from core.outlet_analysis.conversion import ConversionResults
+from core.outlet_analysis.closure import Closures
+from core.outlet_analysis.conversion import ConversionResults, Overall
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
 from core.streams.known import Conditions, in_phase, solids_taken_as_gas
-from core.streams.metered import MeteredStream
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.conversion import ConversionQuestion
 from schemas.edge import EdgeMap, Json
-from schemas.feed import StreamResultSchema, words_of, write_stream
+from schemas.feed import (
+    MeteredStreamResultSchema,
+    StreamResultSchema,
+    words_of,
+    write_stream,
+)
 from schemas.fields import describe
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
-from schemas.streams import Side
+
+Drawn: TypeAlias = Callable[[FloatArray], FloatArray]
+"""Makes the flows of a stream (K, S) of unknowns (K, n)."""
 
 
 class RatioSchema(NumberSchema):
@@ -64,9 +72,16 @@ class ReconciledReadingSchema(OpenSchema):
         "(measured - reconciled)/sqrt(u^2 - u_reconciled^2): standard normal where nothing is"
         " wrong; null without redundancy."
     )
+    measurement_test = number(
+        "Of a reading whose error is correlated with another's: what it is tested by in place of"
+        " adjustment_over_u, the test of greatest power (Tamhane and Mah, 1985); standard normal"
+        " where nothing is wrong."
+    )
     redundancy = number("0: no other reading checks it; 1: it is known from the others.")
     smallest_detectable_error = number(
-        "Found nine times in ten at one false alarm in twenty; null without redundancy."
+        "An error of this size takes the reading's own test beyond 1.96, where one in twenty sound"
+        " readings is too, nine times in ten; suspects are named at a higher limit, which all tests"
+        " share. Null without redundancy."
     )
     suspect = fields.Boolean(required=True)
     bound = fields.String(
@@ -97,6 +112,7 @@ class AlternativeSchema(OpenSchema):
 
     removed = fields.List(fields.String(), required=True)
     conversion = number(required=True)
+    overall_conversion = number("With a recycle.")
     chi_square = number("Of what is left.")
 
 
@@ -107,6 +123,42 @@ class WithoutSuspectSchema(AlternativeSchema):
         fields.Nested(AlternativeSchema),
         metadata=describe("The other ways to choose among readings that cannot be told apart."),
     )
+
+
+class UncertaintyResultSchema(OpenSchema):
+    """How uncertainty was carried through, where it was drawn.
+
+    That is by Monte Carlo in all numbers but those of the reconciliation and
+    without_suspect. Their value is the estimate from the readings.
+    """
+
+    method = fields.String(required=True, metadata=describe("", enum=["monte-carlo"]))
+    coverage = fields.Float(required=True)
+    draws = fields.Integer(required=True)
+    seed = fields.Integer(required=True, metadata=describe("Stated, or the default."))
+    left_out = fields.Integer(
+        required=True, metadata=describe("Draws that have no account, which nothing counts.")
+    )
+
+
+class OverallSchema(OpenSchema):
+    """A reactor with recycle and all around it: what leaves against the fresh feed."""
+
+    conversion = number(
+        "Net, of the key: (fresh - leaving in product and purge)/fresh.", required=True
+    )
+    yields = numbers_by_name(
+        RatioSchema, "By product, per key in the fresh feed; selectivities are the reactor's."
+    )
+    recycle_ratio = number(
+        "Moles returned to the reactor inlet over moles leaving in product and purge.",
+        required=True,
+    )
+    fresh_feed = fields.Nested(StreamResultSchema, required=True)
+    recycle = fields.Nested(MeteredStreamResultSchema, required=True)
+    purge = fields.Nested(MeteredStreamResultSchema, metadata=describe("Where there is one."))
+    product = fields.Nested(StreamResultSchema, metadata=describe("Where there is one."))
+    closure = numbers_by_name(ClosureSchema, "By element: what leaves over the fresh feed.")
 
 
 class ConversionResult(OpenSchema):
@@ -126,8 +178,10 @@ class ConversionResult(OpenSchema):
         " stated.",
     )
     closure = numbers_by_name(ClosureSchema, "By element.")
+    overall = fields.Nested(OverallSchema, metadata=describe("With a recycle."))
     reconciliation = fields.Nested(ReconciliationSchema, required=True)
     without_suspect = fields.Nested(WithoutSuspectSchema)
+    uncertainty = fields.Nested(UncertaintyResultSchema, metadata=describe("Of monte-carlo."))
 
 
 ConversionAnswer = envelope("ConversionAnswer", ConversionResult)
@@ -142,10 +196,9 @@ RATES: dict[SizeBasis, str] = {
 ASSUMED = frozenset({"per-mole-of-key", "outlet-placement", "removed-taken-as-absent"})
 """Notes of the core that are assumptions."""
 
-METHOD = (
-    "weighted least squares on the mole account in extents of reaction; linear propagation of"
-    " uncertainty (GUM, JCGM 100:2008)"
-)
+ESTIMATION = "weighted least squares on the mole account in extents of reaction; "
+METHOD = ESTIMATION + "linear propagation of uncertainty (GUM, JCGM 100:2008)"
+BY_DRAWS = ESTIMATION + "propagation of distributions by Monte Carlo (JCGM 101:2008)"
 
 
 def write(
@@ -175,13 +228,13 @@ class _Writer:
         self.notes: list[Note] = []
 
     def answer(self) -> Answer:
-        found, results = self.found, self.results
+        found, results, account = self.found, self.results, self.found.account
         ids = [reaction.id for reaction in self.reactions.reactions]
         result: Json = {
             "conversion": self._number(results.conversion),
             "extents": self._by(ids, results.extents, self.flow),
-            "inlet": self._side("feed"),
-            "outlet": self._side("outlet"),
+            "inlet": self._side("feed", found.feed_flows, account.feed_map, account.inlet),
+            "outlet": self._side("outlet", found.outlet_flows, account.outlet_map, account.outlet),
         }
         for name in ("key_consumed_by", "key_produced_by"):
             shares: Uncertain | None = getattr(results, name)
@@ -193,10 +246,21 @@ class _Writer:
         if results.space_time_yields is not None:
             result["space_time_yields"] = self._space_time_yields(results.space_time_yields)
         if results.closures is not None:
-            result["closure"] = self._closure()
+            result["closure"] = self._closure(results.closures)
+        if results.overall is not None:
+            result["overall"] = self._overall(results.overall)
         result["reconciliation"] = self._reconciliation()
         if results.without_suspects:
             result["without_suspect"] = self._without_suspect()
+        draws = results.draws
+        if draws is not None:
+            result["uncertainty"] = {
+                "method": "monte-carlo",
+                "coverage": draws.coverage,
+                "draws": draws.sampling.draws,
+                "seed": draws.sampling.seed,
+                "left_out": draws.left_out,
+            }
         notes, assumed = self.notes, self.assumed
         for note in (*self.edge.read_notes, *found.notes, *results.notes):
             (assumed if note.code in ASSUMED else notes).append(note)
@@ -209,7 +273,7 @@ class _Writer:
             result=result,
             notes=self.edge.notes(notes),
             assumed=self.edge.notes((*self.edge.read_assumed, *defaults, *assumed)),
-            method=METHOD,
+            method=METHOD if draws is None else BY_DRAWS,
             data=ATOMIC_WEIGHTS,
         )
 
@@ -217,39 +281,73 @@ class _Writer:
         value, u = float(of.value), float(of.u)
         if not np.isfinite(value):
             return None
-        return self.edge.uncertain(value, u, dimension, coverage=self.coverage, factor=self.factor)
+        ends = None
+        if of.low is not None and of.high is not None:
+            ends = (float(of.low), float(of.high))
+        return self.edge.uncertain(
+            value, u, dimension, coverage=self.coverage, factor=self.factor, ends=ends
+        )
 
     def _each(self, of: Uncertain, dimension: str = "dimensionless") -> list[Json | None]:
-        return [
-            self._number(Uncertain(value, u), dimension)
-            for value, u in zip(of.value, of.u, strict=True)
-        ]
+        one = (of.each(lambda values, k=k: values[k]) for k in range(len(of.value)))  # type: ignore[misc]
+        return [self._number(number_, dimension) for number_ in one]
 
     def _by(self, names: Sequence[str], of: Uncertain | None, dimension: str) -> Json:
         if of is None:
             return dict.fromkeys(names)
         return dict(zip(names, self._each(of, dimension), strict=True))
 
-    def _side(self, side: Side) -> Json:
-        """Return what flows on one side, and each stream where there are several."""
-        found, fed = self.found, len(self.problem.feed)
-        metered = self.problem.feed if side == "feed" else self.problem.outlet
-        flows = found.feed_flows if side == "feed" else found.outlet_flows
-        forms = found.account.feed_map if side == "feed" else found.account.outlet_map
+    def _side(
+        self,
+        side: str,
+        flows: FloatArray,
+        forms: FloatArray,
+        streams: range,
+        drawn: Drawn | None = None,
+    ) -> Json:
+        """Return what flows on one side, and each of its streams where there are several.
+
+        ``drawn`` makes its flows of unknowns where they are not linear forms of them.
+        """
+        drawn = drawn or (lambda z: z @ forms.T)
         conditions = self.question.conditions[side]
         volume = None
         if conditions is not None and conditions.phase == "liquid":
-            volume = self._liquid_volume(side)
-        stream = self._stream(flows, forms, conditions, volume)
-        if len(metered) > 1:
-            first = 0 if side == "feed" else fed
-            stream["streams"] = {
-                self.question.stream_ids[first + g]: self._one(first + g, one)
-                for g, one in enumerate(metered)
-            }
+            volume = self._liquid_volume(side, streams)
+        stream = self._stream(flows, forms, drawn, conditions, volume)
+        if len(streams) > 1:
+            stream["streams"] = {self.question.stream_ids[g]: self._one(g) for g in streams}
         return stream
 
-    def _one(self, g: int, metered: MeteredStream) -> Json:
+    def _overall(self, of: Overall) -> Json:
+        found, account = self.found, self.found.account
+        fresh = range(len(self.problem.feed))
+        said: Json = {
+            "conversion": self._number(of.conversion),
+            "yields": self._ratios(of.yields),
+            "recycle_ratio": self._number(of.recycle_ratio),
+            "fresh_feed": self._side("fresh_feed", found.fresh_flows, account.fresh_map, fresh),
+            "recycle": self._one(account.returned),
+        }
+        if account.purge is not None:
+            said["purge"] = self._one(account.purge)
+        if account.products:
+            said["product"] = self._side(
+                "product",
+                found.product_flows,
+                found.product_forms,
+                account.products,
+                account.product_flows,
+            )
+        if of.closures is not None:
+            said["closure"] = self._closure(of.closures)
+        return said
+
+    def _one(self, g: int) -> Json:
+        metered = self.found.account.streams[g]
+        volume = None
+        if metered.phase == "liquid":
+            volume = _told(self.found.liquid_volume([g]))
         conditions = Conditions(
             metered.phase,
             metered.subject,
@@ -258,13 +356,18 @@ class _Writer:
             metered.compressibility,
         )
         return self._stream(
-            self.found.stream_flows(g), self.found.stream_forms(g), conditions, None
+            self.found.stream_flows(g),
+            self.found.stream_forms(g),
+            partial(self.found.account.stream_flows, g),
+            conditions,
+            volume,
         )
 
     def _stream(
         self,
         flows: FloatArray,
         forms: FloatArray,
+        drawn: Drawn,
         conditions: Conditions | None,
         volume: float | None,
     ) -> Json:
@@ -290,6 +393,10 @@ class _Writer:
                 volume = total * z * GAS_CONSTANT * temperature / pressure
             if volume is None:
                 self._note(NO_CONCENTRATIONS)
+        spread = self._spread(flows, forms, drawn, told)
+        intervals = None
+        if spread.low is not None and spread.high is not None:
+            intervals = (spread.low, spread.high, self.coverage)
         stream = write_stream(
             self.edge,
             names,
@@ -300,27 +407,41 @@ class _Writer:
             temperature=temperature,
             pressure=pressure,
             compressibility=z,
-            u=self.found.u_of(forms),
-            total_u=float(self.found.u_of(forms.sum(axis=0)[None])[0]),
+            u=spread.u[:-1],
+            total_u=float(spread.u[-1]),
+            intervals=intervals,
         )
         if not told.all():
             stream["total"] = None
             self._note(DISTRIBUTION)
         return stream
 
+    def _spread(
+        self, flows: FloatArray, forms: FloatArray, drawn: Drawn, told: BoolArray
+    ) -> Uncertain:
+        """Return the flows of a stream that are told, and their total, with uncertainties."""
+        every = np.concatenate([flows, [flows.sum()]])
+        draws = self.results.draws
+        if draws is None:
+            return Uncertain(
+                every, self.found.u_of(np.concatenate([forms, forms.sum(axis=0)[None]]))
+            )
+        of_draws = drawn(draws.z)[:, told]
+        return draws.spread(every, np.column_stack([of_draws, of_draws.sum(axis=1)]))
+
     def _note(self, note: Note) -> None:
         if note not in self.notes:
             self.notes.append(note)
 
-    def _liquid_volume(self, side: Side) -> float | None:
+    def _liquid_volume(self, side: str, streams: range) -> float | None:
         """Return the volumetric flow of a liquid where the readings tell it, m3/s (batch: m3)."""
-        own = self.found.liquid_volume(side)
+        own = self.found.liquid_volume(streams)
         if own is None and side == "outlet":
             # A liquid of constant density leaves with the volume that it came in with.
-            own = self.found.liquid_volume("feed")
-            if own is not None and np.isfinite(own):
+            own = self.found.liquid_volume(self.found.account.inlet)
+            if _told(own) is not None:
                 self.assumed.append(CONSTANT_DENSITY)
-        return None if own is None or not np.isfinite(own) else float(own)
+        return _told(own)
 
     def _ratios(self, of: Uncertain) -> Json:
         said = self.results.yields
@@ -347,9 +468,7 @@ class _Writer:
             found[names[i]] = said
         return found
 
-    def _closure(self) -> Json:
-        closures = self.results.closures
-        assert closures is not None
+    def _closure(self, closures: Closures) -> Json:
         into, out = self._each(closures.into, self.flow), self._each(closures.out, self.flow)
         return {
             element: {"in": before, "out": after, "ratio": ratio}
@@ -409,6 +528,8 @@ class _Writer:
             ),
             "suspect": bool(table.suspect_set[k]),
         }
+        if np.isfinite(table.measurement_test[k]):
+            said["measurement_test"] = self._plain(table.measurement_test[k])
         if table.within_limit[k] >= 0:
             said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
         return said
@@ -425,8 +546,16 @@ class _Writer:
                 self.found.without_suspects, self.results.without_suspects, strict=True
             )
         ]
+        if self.results.overall is not None:
+            for way, overall in zip(ways, self.results.overall.without_suspects, strict=True):
+                way["overall_conversion"] = self._number(overall)
         first, *others = ways
         return {**first, "alternatives": others} if others else first
+
+
+def _told(value: FloatArray | None) -> float | None:
+    """Return a number where there is one."""
+    return None if value is None or not np.isfinite(value) else float(value)
 
 
 def _as_read(number_: Json | None) -> Json | None:
@@ -452,8 +581,8 @@ NO_CONCENTRATIONS = Note(
 )
 DISTRIBUTION = Note(
     "distribution-not-told",
-    "the readings do not tell how a substance is shared out among the outlet streams; such a"
-    " stream has no total, and only the flows that are known",
+    "the readings do not tell how a substance is shared out among the streams that leave; such"
+    " a stream has no total, and only the flows that are known",
     subject=("outlet",),
 )
 INCONSISTENT = Note(

@@ -126,12 +126,13 @@ class EdgeMap:
         *,
         coverage: float | None = None,
         factor: float = 0.0,
+        ends: tuple[float, float] | None = None,
         unit: str | None = None,
     ) -> Json:
         """Return the Number of an SI value with its standard uncertainty.
 
-        With ``coverage`` also the interval, ``factor`` standard uncertainties wide
-        on each side.
+        With ``coverage`` also the interval: its ``ends``, or else ``factor`` standard
+        uncertainties wide on each side.
         """
         scale = self._scale(dimension, unit)
         number = {
@@ -140,7 +141,8 @@ class EdgeMap:
             "u": u / scale.factor,
         }
         if coverage is not None:
-            ends = (value - factor * u, value + factor * u)
+            if ends is None:
+                ends = (value - factor * u, value + factor * u)
             number["interval"] = [(end - scale.offset) / scale.factor for end in ends]
             number["coverage"] = coverage
         return number

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 from marshmallow import fields
@@ -236,11 +236,11 @@ def _read_streams(
     reader.assumed.extend(account.readings.readings.default_notes(counted))
     volume = form = None
     if of_outlet.phase == "liquid":
-        sides_: tuple[Literal["outlet", "feed"], ...] = ("outlet", "feed")
-        for side_ in sides_:
-            own = found.liquid_volume(side_)
+        fed = len(problem.feed)
+        for streams in (range(fed, fed + len(problem.outlet)), range(fed)):
+            own = found.liquid_volume(streams)
             if own is not None and np.isfinite(own):
-                volume, form = float(own), found.liquid_volume_form(side_)
+                volume, form = float(own), found.liquid_volume_form(streams)
                 break
     if of_outlet.phase != of_feed.phase:
         reader.fault(

@@ -143,7 +143,7 @@ def _has_uncertainty(document: Json) -> bool:
         for form in ("flows", "amounts", "concentrations"):
             if form in stream:
                 for raw in stream[form].values():
-                    if raw.u is not None or raw.u_rel is not None:
+                    if not (raw.u is raw.u_rel is raw.u_shared is None):
                         return True
     return False
 
@@ -193,6 +193,7 @@ def write_stream(
     fractions: bool = True,
     u: FloatArray | None = None,
     total_u: float | None = None,
+    intervals: tuple[FloatArray, FloatArray, float] | None = None,
 ) -> Json:
     """Return a stream as it stands in an answer.
 
@@ -216,6 +217,9 @@ def write_stream(
         Standard uncertainties of the flows.
     total_u : float or None
         And of their sum.
+    intervals : (ndarray, ndarray, float) or None
+        Lower and upper ends of the coverage intervals of the flows, and last of
+        their sum, shape (S + 1,), and their coverage.
     """
     words = words_of(batch)
     word = words.flow
@@ -246,6 +250,12 @@ def write_stream(
     if u is not None:
         for said, spread in zip(species.values(), u.tolist(), strict=True):
             said[word]["u"] = spread / factor
+    ends: list[tuple[float, float]] = []
+    if intervals is not None:
+        low, high, coverage = intervals
+        ends = list(zip((low / factor).tolist(), (high / factor).tolist(), strict=True))
+        for said, interval in zip(species.values(), ends, strict=False):
+            said[word] |= {"interval": list(interval), "coverage": coverage}
     stream: Json = {}
     if temperature is not None:
         stream["temperature"] = edge.number(temperature, "temperature")
@@ -261,6 +271,8 @@ def write_stream(
     stream["total"] = {"value": total / factor, "unit": unit}
     if total_u is not None:
         stream["total"]["u"] = total_u / factor
+    if ends:
+        stream["total"] |= {"interval": list(ends[-1]), "coverage": coverage}
     if phase_total != total:
         stream["phase_total"] = {"value": phase_total / factor, "unit": unit}
     stream["species"] = species

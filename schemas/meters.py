@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 
 from marshmallow import fields
 
 from core.constants import GAS_CONSTANT
 from core.errors import Subject
-from core.streams.metered import DesignDensity, FlowKind, Measurement
+from core.streams.metered import DesignDensity, FlowKind, Instrument, Measurement
 from core.streams.stream import StreamPhase
 from schemas.edge import Json, RequestReader
 from schemas.fields import Choice, List, Number, Quantity, describe
@@ -90,12 +90,29 @@ class Meter:
         m3/mol at its conditions, where it counts volume.
     design : DesignDensity or None
     u_rel : float
-        Relative uncertainty that its temperature and pressure put on the flow.
+        Relative uncertainty that its temperature and pressure put on the flow by
+        errors of their own.
+    shared : tuple of (Instrument, float)
+        What they share with other readings, relative to the flow: too hot a
+        meter makes too little of it.
     """
 
     molar_volume: float | None
     design: DesignDensity | None
     u_rel: float
+    shared: tuple[tuple[Instrument, float], ...]
+
+
+def _on_flow(
+    counting: Iterable[tuple[Measurement, float]],
+) -> tuple[float, tuple[tuple[Instrument, float], ...]]:
+    """Relative errors that conditions put on a flow whose form goes with powers of them."""
+    own, shared = 0.0, list[tuple[Instrument, float]]()
+    for of, power in counting:
+        own = math.hypot(own, power * of.u / of.value)
+        # What the form has too much of, the reading has too little of.
+        shared += [(name, -power * part / of.value) for name, part in of.shared]
+    return own, tuple(shared)
 
 
 Condition = Callable[[Json, str, str, Subject], Measurement | None]
@@ -139,7 +156,7 @@ class MeterReader:
             )
         ratio = design.get("compressibility", 1.0) / stated.get("compressibility", 1.0)
         exponent = DesignDensity.of_ratio(kind)
-        variances = []
+        counting: list[tuple[Measurement, float]] = []
         at_meter: dict[str, float] = {}
         for name, direction in (("temperature", -1), ("pressure", 1)):
             open_ = name not in compensated
@@ -151,7 +168,7 @@ class MeterReader:
             at_meter[name] = actual.value
             power = direction * exponent if open_ else 0.0
             power -= direction * (kind == "volume")
-            variances.append((power * actual.u / actual.value) ** 2)
+            counting.append((actual, power))
             if open_ and of_design is not None:
                 ratio *= (actual.value / of_design) ** direction
         molar_mass = self._constant(
@@ -179,7 +196,7 @@ class MeterReader:
         if kind == "volume":
             z = stated.get("compressibility", 1.0)
             molar_volume = z * GAS_CONSTANT * at_meter["temperature"] / at_meter["pressure"]
-        return Meter(molar_volume, DesignDensity(molar_mass, ratio), math.sqrt(sum(variances)))
+        return Meter(molar_volume, DesignDensity(molar_mass, ratio), *_on_flow(counting))
 
     def _plain(self, stated: Json, place: str, about: Subject, kind: FlowKind) -> Meter | None:
         """Return a meter that counts volume at its own conditions, and needs no correction."""
@@ -205,8 +222,7 @@ class MeterReader:
             return None
         z: float = stated.get("compressibility", 1.0)
         molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
-        share = math.hypot(temperature.u / temperature.value, pressure.u / pressure.value)
-        return Meter(molar_volume, None, share)
+        return Meter(molar_volume, None, *_on_flow([(temperature, 1.0), (pressure, -1.0)]))
 
     def _actual(
         self, stated: Json, name: str, place: str, about: Subject, *, needed: bool = True

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Collection
 from dataclasses import dataclass, field
 
 from core.errors import Note, Subject
 from core.streams.default_uncertainty import DEFAULT_UNCERTAINTIES
-from core.streams.metered import Measurement
+from core.streams.metered import Instrument, Measurement
 from schemas.edge import Measured, RequestReader
 
 
@@ -25,7 +24,8 @@ class Readings:
     reader: RequestReader
     weighed: bool = True
     defaults: dict[str, list[tuple[Subject, bool]]] = field(default_factory=dict)
-    instruments: dict[str, list[Subject]] = field(default_factory=dict)
+    instruments: dict[str, list[tuple[Subject, bool]]] = field(default_factory=dict)
+    """Readings that name each instrument, and whether they state what they share."""
 
     def measurement(
         self, found: Measured | None, subject: Subject, kind: str
@@ -36,30 +36,32 @@ class Readings:
         if not self.weighed:
             return Measurement(found.value, found.u or 0.0, subject, found.bound)
         u = found.u
+        shared: tuple[tuple[Instrument, float], ...] = ()
         if found.u_shared is not None:
-            # Of one sample the two parts cannot be told apart; together they are its uncertainty.
-            u = math.hypot(u or 0.0, found.u_shared)
-            if found.instrument is not None and found.u_shared > 0:
-                self._shared_by(found.instrument, subject)
+            u = u or 0.0
+            if found.u_shared > 0:
+                shared = ((found.instrument or subject, found.u_shared),)
+        if found.instrument is not None:
+            named = self.instruments.setdefault(found.instrument, [])
+            named.append((subject, bool(shared)))
         if u is None and found.bound is None:
             u = DEFAULT_UNCERTAINTIES[kind].of(found.value)
             swamped = u > abs(found.value) > 0
             self.defaults.setdefault(kind, []).append((subject, swamped))
-        return Measurement(found.value, u or 0.0, subject, found.bound)
+        return Measurement(found.value, u or 0.0, subject, found.bound, shared)
 
-    def _shared_by(self, instrument: str, subject: Subject) -> None:
-        others = self.instruments.setdefault(instrument, [])
-        others.append(subject)
-        if len(others) == 2:
-            self.reader.notes.append(
-                Note(
-                    "instrument-taken-as-independent",
-                    f"readings of the instrument {instrument} share an error; this release takes"
-                    " their errors as independent of each other",
-                    "warning",
-                    subject,
-                )
+    def instrument_notes(self) -> list[Note]:
+        """Return what is to be said of instruments that several readings name for nothing."""
+        return [
+            Note(
+                "instrument-shares-nothing",
+                f"of the readings of the instrument {instrument} fewer than two state 'u_shared',"
+                " so their errors count as independent: 'u' and 'u_rel' are each reading's own",
+                subject=named[0][0],
             )
+            for instrument, named in self.instruments.items()
+            if len(named) > 1 and sum(shares for _, shares in named) < 2
+        ]
 
     def default_notes(self, used: Collection[Subject]) -> list[Note]:
         """Return the assumptions that the default uncertainties of the readings used are."""

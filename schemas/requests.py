@@ -230,7 +230,7 @@ def read_request(
     document : object
         The parsed body.
     streams : sequence of str
-        Members that are streams.
+        Members that are streams, where they are stated.
     build : callable
         Makes the question from the request, its reader and its reactions; None
         after a fault that it kept.
@@ -242,7 +242,8 @@ def read_request(
     """
     request = load(schema, document)
     reader = RequestReader.of(request)
-    reactions = read_reactions(request, reader, [(request[name], f"/{name}") for name in streams])
+    stated = [(request[name], f"/{name}") for name in streams if name in request]
+    reactions = read_reactions(request, reader, stated)
     question = build(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert question is not None

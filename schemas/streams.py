@@ -13,7 +13,13 @@ from marshmallow import fields
 from core.errors import Note, Subject
 from core.outlet_analysis.readings import FRACTIONS
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Analysis, FlowKind, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    FlowKind,
+    FlowReading,
+    Measurement,
+    MeteredStream,
+)
 from core.streams.stream import StreamPhase
 from schemas.analyses import AnalysisReader, AnalysisSchema, analysed_substances, each_analysis
 from schemas.edge import Json, RequestReader
@@ -27,7 +33,9 @@ MAX_ANALYSES = 12
 
 PHASES = ("gas", "liquid")
 
-Side = Literal["feed", "outlet"]
+Side = Literal["feed", "outlet", "around"]
+"""What is asked of a stream: of a feed what it holds; of an outlet some reading; of a stream
+around a reactor with recycle nothing but its phase, since the others may tell it."""
 
 
 class MeteredStreamSchema(ClosedSchema):
@@ -149,7 +157,7 @@ class StreamReader:
     def metered(
         self, document: Json, pointer: str, subject: Subject, side: Side
     ) -> tuple[MeteredStream, ...]:
-        """Return the metered streams of a feed or an outlet.
+        """Return the metered streams of a feed, an outlet, or around a reactor with recycle.
 
         An outlet may be known by its analysis alone, or by its flow alone; each
         stream of a known feed states what flows in it.
@@ -247,7 +255,7 @@ class StreamReader:
 
     def _form(self, document: Json, pointer: str, side: Side) -> str:
         stated = [name for name in CONTENT_FORMS if name in document]
-        if not stated and side == "outlet" and "flow" in document:
+        if not stated and (side == "around" or (side == "outlet" and "flow" in document)):
             return "analysis"
         if len(stated) != 1:
             found = ", ".join(stated) or "none of them"
@@ -417,9 +425,13 @@ class StreamReader:
         meter = self.meters.meter(document, pointer, subject, phase, flow.kind)
         if meter is None:
             return flow
-        # Whatever is wrong with the meter's conditions is wrong with this reading alone.
+        # Whatever is wrong with the meter's conditions is wrong with this reading.
         reading = flow.measurement
-        reading = replace(reading, u=math.hypot(reading.u, meter.u_rel * reading.value))
+        parts = dict(reading.shared)
+        for instrument, part in meter.shared:
+            parts[instrument] = parts.get(instrument, 0.0) + part * reading.value
+        own = math.hypot(reading.u, meter.u_rel * reading.value)
+        reading = replace(reading, u=own, shared=tuple(parts.items()))
         return replace(
             flow, measurement=reading, molar_volume=meter.molar_volume, design=meter.design
         )

@@ -7,6 +7,7 @@ from typing import Any
 from flask import Blueprint
 
 from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.monte_carlo import monte_carlo
 from core.outlet_analysis.reconciliation import estimate
 from schemas import conversion as wire
 from schemas.answer import Answer
@@ -23,11 +24,13 @@ def answer(document: Any) -> Answer:
     question, edge = wire.read(document)
     with edge.locating():
         found = estimate(question.problem)
+        draws = None if question.sampling is None else monte_carlo(found, question.sampling)
         results = conversion_results(
             found,
             basis=question.basis,
             element=question.element,
             per_key=question.per_key,
             size=question.size,
+            draws=draws,
         )
     return write(question, found, results, edge)

@@ -143,10 +143,12 @@ class Application(BaseApplication):  # type: ignore[misc]
         # NumPy reads the thread settings when it is imported, so not before raw_env is in force.
         from service.app import create_app
 
-        app = create_app(self._settings.max_body)
+        app = create_app()
+        _warm_up(app)
+        # A caller's bodies may be allowed less than an example takes.
+        app.config["MAX_CONTENT_LENGTH"] = self._settings.max_body
         # A body is read while a route runs; broken framing is the client's fault there too.
         app.register_error_handler(errors.ParseException, _refuse_body)
-        _warm_up(app)
         return app
 
     def _ready(self, arbiter: Any) -> None:

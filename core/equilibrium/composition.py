@@ -14,9 +14,9 @@ from enum import IntEnum
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.equilibrium.budget import Budget
-from core.equilibrium.newton import IntArray, System, find_composition
+from core.equilibrium.newton import System, find_composition
 from core.equilibrium.one_reaction import OneReaction, find_extent
 from core.equilibrium.reaction_space import ReactionSpace, Steps, reach
 

@@ -8,9 +8,8 @@ from typing import Protocol
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.constants import GAS_CONSTANT
-from core.equilibrium.newton import IntArray
 from core.errors import Subject
 from core.rates.equilibrium_constant import EquilibriumConstant, coefficient_sum
 from core.reactions.reaction_set import ReactionSet

@@ -12,11 +12,10 @@ from functools import cached_property
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.constants import GAS_CONSTANT
 from core.equilibrium.budget import CALL, work_of_state
 from core.equilibrium.composition import Composition, Status, Task, find
-from core.equilibrium.newton import IntArray
 from core.equilibrium.problem import Equilibrium, EquilibriumProblem
 from core.equilibrium.reaction_space import ReactionSpace, reaction_space
 from core.errors import Amount, Fault, refuse

@@ -9,12 +9,11 @@ from typing import Literal
 
 import numpy as np
 
-from core.arrays import FloatArray
+from core.arrays import FloatArray, IntArray
 from core.constants import GAS_CONSTANT
 from core.equilibrium.budget import Budget
 from core.equilibrium.constants import StatedConstants
 from core.equilibrium.equilibrium import solve_equilibrium
-from core.equilibrium.newton import IntArray
 from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Hold, Mixture
 from core.errors import Fault, Note, Refused, Subject, refuse
 from core.mole_account.extent_range import ConversionRange, conversion_range

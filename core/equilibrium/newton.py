@@ -22,13 +22,10 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 
 import numpy as np
-from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.equilibrium.budget import CALL, Budget
 from core.numerics.linear import solve_stack
-
-IntArray = NDArray[np.intp]
 
 _EPS = float(np.finfo(float).eps)
 MOST_ITERATIONS = 400

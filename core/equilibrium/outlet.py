@@ -124,7 +124,7 @@ def approaches(
         slope = nu @ np.where((nu != 0)[:, None], gradients, 0.0)
         variance = max(float(slope @ outlet.covariance @ slope), 0.0)
         if outlet.pressure is not None and constants.phase == "gas":
-            variance += (order * outlet.pressure.u / outlet.pressure.value) ** 2
+            variance += (order * outlet.pressure.total_u / outlet.pressure.value) ** 2
         one = _one(constants, j, constant, outlet.temperature, ln_q, variance**0.5)
         if isinstance(one, Note):
             found.append(None)
@@ -191,10 +191,10 @@ def _one(
     if slope == 0:
         return _none(subject, id_, "its constant does not change with temperature there")
     u_eq = u / abs(slope)
-    of_temperature = float(around[4] - around[2]) / (2 * _STEP) * temperature.u
+    of_temperature = float(around[4] - around[2]) / (2 * _STEP) * temperature.total_u
     return ReactionApproach(
         float(found.approach[0]),
-        float(np.hypot(u_eq, temperature.u)),
+        float(np.hypot(u_eq, temperature.total_u)),
         t_eq,
         u_eq,
         ln_q - float(around[3]),

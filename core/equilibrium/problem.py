@@ -5,10 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from typing import Literal
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.equilibrium.budget import Budget
 from core.equilibrium.constants import Constants, Enthalpies
-from core.equilibrium.newton import IntArray
 from core.errors import Fault, Subject
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.cubic import CubicEquation

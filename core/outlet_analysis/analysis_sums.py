@@ -118,7 +118,16 @@ def sum_u(readings: Readings, of: AnalysisSum, rows: slice) -> FloatArray:
     """Standard uncertainty of the values of an analysis together, shape (N,)."""
     proper = np.isfinite(readings.measured[rows, of.place]) & (readings.bound[rows, of.place] == 0)
     u = np.where(proper, readings.u[rows, of.place], 0.0)
-    return np.asarray(np.sqrt((u * u).sum(axis=1)))
+    square = (u * u).sum(axis=1)
+    if readings.correlated is not None:
+        correlated = readings.correlated.samples(rows)
+        here = np.flatnonzero(
+            (correlated.rows >= of.place.start) & (correlated.rows < of.place.stop)
+        )
+        part = u[:, correlated.rows[here] - of.place.start]
+        between = correlated.coefficients[:, here[:, None], here] - np.eye(len(here))
+        square = square + ((between @ part[:, :, None])[:, :, 0] * part).sum(axis=1)
+    return np.asarray(np.sqrt(np.maximum(square, 0.0)))
 
 
 def _left_of_removed(
@@ -162,6 +171,6 @@ def sum_faults(sums: Iterable[AnalysisSum], rows: slice) -> dict[int, Fault]:
     return found
 
 
-def percent(share: float) -> str:
+def percent(share: float, digits: int = 5) -> str:
     """Return a share in words."""
-    return f"{100 * share:.5g} %"
+    return f"{100 * share:.{digits}g} %"

@@ -13,16 +13,24 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
-from core.errors import Note
-from core.outlet_analysis.account import Account, release_outlet
+from core.arrays import BoolArray, FloatArray, IntArray
+from core.errors import Note, Subject
+from core.outlet_analysis.account import (
+    Account,
+    AccountProblem,
+    Around,
+    release_around,
+    release_outlet,
+)
 from core.outlet_analysis.estimate import Estimate
-from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.monte_carlo import MOST_LEFT_OUT, Draws, drawn_blocks
 from core.outlet_analysis.preparation import BLOCK, prepare
 from core.outlet_analysis.ratios import Uncertain, forms_of, ratios
 from core.outlet_analysis.remarks import counting
 from core.outlet_analysis.solving import Fitted, fit_block
 from core.reactions.elements import element_matrix
+
+NAMES = ("into", "out", "ratio")
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,8 +53,15 @@ class Closures:
     notes: tuple[Note, ...]
 
 
-def element_closures(found: Estimate) -> Closures:
-    """Return the element closures of the readings of an estimate with an outlet."""
+def element_closures(
+    found: Estimate, around: Around = "reactor", draws: Draws | None = None
+) -> Closures:
+    """Return the element closures of the readings of an estimate with an outlet.
+
+    With a recycle they are those ``around`` the reactor, or the whole that it
+    stands in: what leaves over what comes from outside. With ``draws``, of a
+    single sample, their uncertainties come from the same draws of the readings.
+    """
     reactions = found.account.problem.reactions
     elements, atoms = element_matrix(reactions)
     single = found.account.readings.samples is None
@@ -58,22 +73,87 @@ def element_closures(found: Estimate) -> Closures:
         for i, substance in enumerate(reactions.substances)
         if substance.formula is None and flowing[i]
     ]
-    if elements and not opaque:
+    silent = _silent(found.account.problem, around)
+    if elements and not opaque and not silent:
         # What was taken as absent from the feed is so here; mostly that is nothing at all.
         patterns, which = absent[:1], np.zeros(len(absent), dtype=np.intp)
         if absent.any():
             patterns, which = np.unique(absent, axis=0, return_inverse=True)
         for k, pattern in enumerate(patterns):
-            account = release_outlet(found.account, np.flatnonzero(pattern).tolist())
+            account = _released(found.account, around, np.flatnonzero(pattern))
             rows = np.flatnonzero(which.reshape(-1) == k)
             for first in range(0, len(rows), BLOCK):
                 of.fill(account, atoms, rows[first : first + BLOCK], found.first)
-    notes = _notes(found.account, elements, atoms, of, opaque)
     into, out, ratio = (
         Uncertain(value[0], u[0]) if single else Uncertain(value, u)
-        for value, u in ((of.values[name], of.spread[name]) for name in ("into", "out", "ratio"))
+        for value, u in ((of.values[name], of.spread[name]) for name in NAMES)
+    )
+    if draws is not None and elements and not opaque and not silent:
+        into, out, ratio = _drawn(found, around, draws, atoms, (into, out, ratio))
+        for name, part in zip(NAMES, (into, out, ratio), strict=True):
+            of.values[name] = part.value[None]
+    notes = (
+        [silent]
+        if silent is not None
+        else _notes(found.account, elements, atoms, of, opaque, around)
     )
     return Closures(elements, into, out, ratio, tuple(notes))
+
+
+def _released(account: Account, around: Around, absent: IntArray) -> Account:
+    """Return a part of an account with feed and outlet unconnected."""
+    if account.problem.recycle is None:
+        return release_outlet(account, absent.tolist())
+    return release_around(account, around, absent.tolist())
+
+
+def _drawn(
+    found: Estimate,
+    around: Around,
+    draws: Draws,
+    atoms: FloatArray,
+    estimated: tuple[Uncertain, Uncertain, Uncertain],
+) -> tuple[Uncertain, Uncertain, Uncertain]:
+    """Closures with the spread that draws give them; absent where too many have none."""
+    account = _released(found.account, around, np.flatnonzero(found.absent))
+    forms = np.concatenate([atoms @ account.feed_map, atoms @ account.outlet_map])
+    flows = np.full((draws.sampling.draws, len(forms)), np.nan)
+    for rows, series in drawn_blocks(found.account, draws.sampling, account):
+        block = flows[rows]
+        for outcome in fit_block(prepare(series, slice(0, len(block))), None):
+            if isinstance(outcome, Fitted):
+                block[outcome.rows] = outcome.z @ forms.T
+    flows = flows[draws.kept & np.isfinite(flows).all(axis=1)]
+    into, out, ratio = estimated
+    if len(flows) < (1 - MOST_LEFT_OUT) * draws.sampling.draws:
+        nothing = np.zeros(len(atoms), dtype=bool)
+        return into.where(nothing), out.where(nothing), ratio.where(nothing)
+    fed, left = np.split(flows, 2, axis=1)
+    return (
+        draws.spread(into.value, fed),
+        draws.spread(out.value, left),
+        draws.quotient(ratio.value, into.value, left, fed),
+    )
+
+
+def _silent(problem: AccountProblem, around: Around) -> Note | None:
+    """Return what to say where no stream out of a part with recycle has any reading."""
+    recycle = problem.recycle
+    if recycle is None:
+        return None
+    streams, place = problem.outlet, "out of the reactor, in 'outlet',"
+    closure: Subject = ("closure",)
+    if around == "whole":
+        purge = () if recycle.purge is None else (recycle.purge,)
+        streams, place = (*recycle.products, *purge), "that leaves, in 'product' and 'purge',"
+        closure = ("overall", "closure")
+    if any(stream.flows or stream.analyses for stream in streams):
+        return None
+    return Note(
+        "closure-not-read",
+        f"no element closure around the {around} is given: nothing {place} is read",
+        subject=closure,
+    )
 
 
 class _Closures:
@@ -81,8 +161,8 @@ class _Closures:
 
     def __init__(self, samples: int, elements: int, substances: int) -> None:
         shape = (samples, elements)
-        self.values = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
-        self.spread = {name: np.full(shape, np.nan) for name in ("into", "out", "ratio")}
+        self.values = {name: np.full(shape, np.nan) for name in NAMES}
+        self.spread = {name: np.full(shape, np.nan) for name in NAMES}
         self.tied = np.zeros(shape, dtype=bool)
         self.unread = np.zeros((samples, 2, substances), dtype=bool)
 
@@ -126,15 +206,17 @@ def _notes(
     atoms: FloatArray,
     of: _Closures,
     opaque: list[int],
+    around: Around,
 ) -> list[Note]:
     names = account.problem.reactions.names
+    closure, place = ("closure", ()) if around == "reactor" else ("overall closure", ("overall",))
     if opaque:
         return [
             Note(
                 "closure-opaque",
-                "no element closure is given: the atoms of {substances} are not known; declare"
-                " a formula to have it",
-                subject=("closure",),
+                f"no element {closure} is given: the atoms of {{substances}} are not known;"
+                " declare a formula to have it",
+                subject=(*place, "closure"),
                 facts={"substances": ", ".join(names[i] for i in opaque)},
             )
         ]
@@ -153,9 +235,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-not-read",
-                    "the closure of {element} cannot be formed from the readings alone, which"
+                    f"the {closure} of {{element}} cannot be formed from the readings alone, which"
                     " do not tell the flow of {substances}" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, "substances": " and ".join(where), **facts},
                 )
             )
@@ -163,9 +245,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-by-tie",
-                    "the closure of {element} says nothing: no meter tells how much leaves, and"
-                    " the inert substances that hold it were used to tell",
-                    subject=("closure", element),
+                    f"the {closure} of {{element}} says nothing: no meter tells how much leaves,"
+                    " and the inert substances that hold it were used to tell",
+                    subject=(*place, "closure", element),
                     facts={"element": element},
                 )
             )
@@ -174,9 +256,9 @@ def _notes(
             notes.append(
                 Note(
                     "denominator-near-zero",
-                    "no closure of {element} is given: what is fed of it is within twice its"
+                    f"no {closure} of {{element}} is given: what is fed of it is within twice its"
                     " uncertainty of zero, or of what rounding leaves" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, **facts},
                 )
             )
@@ -185,9 +267,9 @@ def _notes(
             notes.append(
                 Note(
                     "closure-not-read",
-                    "the closure of {element} is not given: from the readings alone, feed and"
+                    f"the {closure} of {{element}} is not given: from the readings alone, feed and"
                     " outlet unconnected, no account was found" + words,
-                    subject=("closure", element),
+                    subject=(*place, "closure", element),
                     facts={"element": element, **facts},
                 )
             )

@@ -4,7 +4,9 @@ Sources: S. Narasimhan, C. Jordache, Data Reconciliation and Gross Error
 Detection, Gulf, 2000 (global test, measurement test, serial elimination);
 Z. Sidak, J. Am. Stat. Assoc. 62 (1967) 626 (level of many tests); W. Baarda,
 A Testing Procedure for Use in Geodetic Networks, Delft, 1968 (smallest
-detectable error).
+detectable error). Of correlated errors the measurement test is that of greatest
+power, A. C. Tamhane, R. S. H. Mah, Technometrics 27 (1985) 409: of V^-1 r in
+place of r. Its square is what chi-square falls by without the reading.
 """
 
 from __future__ import annotations
@@ -18,18 +20,17 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtri, ndtri
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.outlet_analysis.budget import most_refits
 from core.outlet_analysis.gauss_newton import (
     SINGULAR,
     Curvature,
     Fit,
-    IntArray,
     curvature,
     least_squares,
 )
 from core.outlet_analysis.readings import BELOW
-from core.outlet_analysis.solving import Fitted
+from core.outlet_analysis.solving import Fitted, without_repeats
 
 LEVEL = 0.05
 """Share of false alarms of the global test and of all measurement tests together."""
@@ -95,6 +96,14 @@ class Examined:
     loose : Curvature
         Without them, where the readings proper alone have it come to rest.
     standardised : ndarray, shape (N, m')
+        What is tested of each reading, standard normal where nothing is wrong.
+    adjustment : ndarray, shape (N, m')
+        Its residual over the standard uncertainty of that: the same but of
+        correlated readings.
+    redundancy : ndarray, shape (N, m')
+        1 - (u of the fitted value over u)^2, 0 where nothing is testable. An
+        error that correlated ones move a reading by is none that they find in
+        it: no more is told of it than what its test weighs an error by.
     testable : ndarray of bool, shape (N, m')
     chi_square, limit : ndarray, shape (N,)
     freedom : ndarray of int, shape (N,)
@@ -108,6 +117,8 @@ class Examined:
     value: FloatArray
     loose: Curvature
     standardised: FloatArray
+    adjustment: FloatArray
+    redundancy: FloatArray
     testable: BoolArray
     chi_square: FloatArray
     freedom: IntArray
@@ -127,6 +138,8 @@ class Examined:
             self.value[rows],
             self.loose.samples(rows),
             self.standardised[rows],
+            self.adjustment[rows],
+            self.redundancy[rows],
             self.testable[rows],
             self.chi_square[rows],
             self.freedom[rows],
@@ -141,7 +154,7 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
     at_solution = curvature(fit, z, natural)
     value = fit.forms.at(at_solution.z).value
     weight = fit.weight
-    if len(fit.stiff):
+    if len(fit.stiff) and fit.mixture is None:
         weight = np.array(weight)
         near = np.isfinite(fit.compliance) & (fit.compliance > 0)
         weight[:, fit.stiff] = np.where(near, 1 / np.where(near, fit.compliance, 1.0), 0.0)
@@ -158,14 +171,31 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
         contradicted = limited & (beyond > doubt)
     residual = loose.residual
     proper = (weight > 0) & ~limited
+    if fit.mixture is not None:
+        proper[:, fit.stiff] = fit.mixture.there & (fit.mixture.u > 0)
     redundancy = np.where(proper, loose.redundancy, 0.0)
     rounding = 1e-15 * loose.inflation[:, None]
     testable = proper & (loose.control > np.maximum(least, rounding)) & (redundancy > 0)
-    scale = stated.u * np.sqrt(np.where(testable, redundancy, 1.0))
-    standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
-    chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
+    if loose.correlated is None:
+        scale = stated.u * np.sqrt(np.where(testable, redundancy, 1.0))
+        standardised = np.where(testable, residual / np.where(testable, scale, 1.0), np.nan)
+        adjustment = standardised
+        left = redundancy
+        chi_square = np.where(proper, weight * residual**2, 0.0).sum(axis=1)
+        total = redundancy.sum(axis=1)
+    else:
+        of = loose.correlated
+        own = of.information.diagonal(axis1=1, axis2=2)
+        testable &= own > 0
+        standardised = _over_root(of.multiplier, own, testable)
+        moved = testable & (of.residual_variance > NO_REDUNDANCY * stated.u**2)
+        adjustment = _over_root(residual, of.residual_variance, moved)
+        left = of.residual_variance / np.where(proper, stated.u, 1.0) ** 2
+        left = np.minimum(left, redundancy)
+        soft = proper & (weight > 0)
+        chi_square = np.where(soft, weight * residual**2, 0.0).sum(axis=1) + of.chi_square
+        total = np.where(soft, redundancy, 0.0).sum(axis=1) + of.freedom
     # A singular sample has no number here; it is refused for its inflation.
-    total = redundancy.sum(axis=1)
     freedom = np.rint(np.where(np.isnan(total), 0.0, total)).astype(np.intp)
     limit = np.where(freedom > 0, _limits(fit.measured.shape[1])[freedom - 1], np.nan)
     tests = testable.sum(axis=1)
@@ -177,6 +207,8 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
         value,
         loose,
         standardised,
+        adjustment,
+        np.where(testable, left, 0.0),
         testable,
         chi_square,
         freedom,
@@ -184,6 +216,11 @@ def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Exa
         failing,
         contradicted,
     )
+
+
+def _over_root(value: FloatArray, square: FloatArray, marks: BoolArray) -> FloatArray:
+    """Return values over the roots of squares where marked, not a number elsewhere."""
+    return np.where(marks, value / np.sqrt(np.where(marks, square, 1.0)), np.nan)
 
 
 def _let_loose(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Curvature:
@@ -231,8 +268,13 @@ def _drop(fit: Fit, readings: IntArray) -> Fit:
     place = np.full(fit.measured.shape[1], -1)
     place[fit.stiff] = np.arange(len(fit.stiff))
     hard = rows[place[readings[rows]] >= 0]
-    compliance[hard, place[readings[hard]]] = np.inf
-    return replace(fit, weight=weight, compliance=compliance)
+    if fit.mixture is None:
+        compliance[hard, place[readings[hard]]] = np.inf
+        return replace(fit, weight=weight, compliance=compliance)
+    gone = np.zeros(fit.compliance.shape, dtype=bool)
+    gone[hard, place[readings[hard]]] = True
+    mixture, compliance = fit.mixture.without(gone)
+    return replace(fit, weight=weight, compliance=compliance, mixture=mixture)
 
 
 def suspects(
@@ -267,6 +309,7 @@ def suspects(
                 chosen[row] += [[limit] for limit in np.flatnonzero(part.contradicted[k]).tolist()]
         fit = _drop(fit.samples(going), order[going, 0])
         rows, natural, stated = rows[going], natural[going], stated.samples(going)
+        fit = without_repeats(fit, z[going], natural)
         solution = least_squares(fit, z[going], natural)
         examined = examine(fit, solution.z, natural, stated)
         again = examined.doubtful & solution.converged
@@ -286,6 +329,14 @@ def _cannot_be_told_apart(seen: Examined, stated: Stated) -> BoolArray:
     candidates = seen.testable & (seen.loose.redundancy >= SUSPICIOUS)
     size = np.where(candidates, np.abs(seen.standardised), -1.0)
     worst = size.argmax(axis=1)
+    if seen.loose.correlated is not None:
+        information = seen.loose.correlated.information
+        spread = np.sqrt(information.diagonal(axis1=1, axis2=2).clip(0.0))
+        spread = np.where(candidates, spread, np.inf)
+        common = np.abs(information[sample, worst])
+        members = candidates & (common > PARALLEL * spread * spread[sample, worst][:, None])
+        members[sample, worst] = candidates[sample, worst]
+        return np.asarray(members)
     slopes = seen.loose.slopes
     along = slopes[sample, worst][:, None, :] @ seen.loose.covariance
     common = (along @ slopes.transpose(0, 2, 1))[:, 0, :]
@@ -358,13 +409,7 @@ def _refit(
     if not ways:
         return []
     copies = np.zeros(len(ways), dtype=np.intp)
-    fit = Fit(
-        fitted.fit.forms.samples(copies),
-        fitted.fit.measured[copies],
-        fitted.fit.weight[copies],
-        fitted.fit.stiff,
-        fitted.fit.compliance[copies],
-    )
+    fit = fitted.fit.samples(copies)
     bound = np.array(stated.bound[copies])
     for k in range(max(map(len, ways))):
         readings = np.array([way[k] if k < len(way) else -1 for way in ways], dtype=np.intp)
@@ -372,6 +417,7 @@ def _refit(
         there = np.flatnonzero(readings >= 0)
         bound[there, readings[there]] = 0
     natural = fitted.natural[copies]
+    fit = without_repeats(fit, fitted.z[copies], natural)
     solution = least_squares(fit, fitted.z[copies], natural)
     of = examine(fit, solution.z, natural, replace(stated.samples(copies), bound=bound))
     agrees = (of.freedom == 0) | (of.chi_square <= of.limit)
@@ -397,6 +443,10 @@ def _likely_pairs(seen: Examined, stated: Stated, candidates: list[int]) -> list
     of = -(slopes @ seen.loose.covariance[0] @ slopes.T)
     own = stated.u[0, k] ** 2 * seen.loose.redundancy[0, k]
     residual = seen.loose.residual[0, k]
+    correlated = seen.loose.correlated
+    if correlated is not None:
+        of = correlated.information[0][k[:, None], k]
+        own, residual = of.diagonal(), correlated.multiplier[0, k]
     i, j = np.triu_indices(len(k), 1)
     determinant = own[i] * own[j] - of[i, j] ** 2
     apart = determinant > (1 - PARALLEL) * own[i] * own[j]

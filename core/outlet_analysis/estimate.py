@@ -2,18 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Note, Subject
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.consistency import WithoutSuspects
-from core.outlet_analysis.gauss_newton import IntArray
+from core.outlet_analysis.nonlinearity import Local
 from core.outlet_analysis.readings import VOLUME
 
 
@@ -34,11 +34,18 @@ class ReadingTable:
         where nothing is wrong; absent without redundancy. Above zero where
         the reading lies above its reconciled value: what the account does to
         the reading has the other sign.
+    measurement_test : ndarray, shape (..., m)
+        Of a reading whose error is correlated with another's, in place of
+        adjustment_over_u: the test of greatest power (Tamhane and Mah, 1985);
+        absent of the others.
     redundancy : ndarray, shape (..., m)
-        1 - leverage: 0 where no other reading checks this one; absent of a bound.
+        1 - leverage, which is 1 - (reconciled_u/u)^2: 0 where no other reading
+        checks this one; absent of a bound. Of a correlated reading no more than
+        (3.24 u/smallest_detectable_error)^2.
     smallest_detectable_error : ndarray, shape (..., m)
         SI; an error this large is found nine times in ten by a test that
-        raises one false alarm in twenty: 3.24 u/sqrt(redundancy).
+        raises one false alarm in twenty: 3.24 u/sqrt(redundancy), or of a
+        correlated reading 3.24 over the root of what it weighs in its test.
     suspect_set : ndarray of int, shape (..., m)
         Number, from 1, of the set of readings that cannot be told apart and
         one of which errs; 0 where nothing is suspected.
@@ -56,6 +63,7 @@ class ReadingTable:
     reconciled: FloatArray
     reconciled_u: FloatArray
     adjustment_over_u: FloatArray
+    measurement_test: FloatArray
     redundancy: FloatArray
     smallest_detectable_error: FloatArray
     suspect_set: IntArray
@@ -116,6 +124,8 @@ class Estimate:
     first : int
         Where in the series this estimate begins.
     notes : tuple of Note
+    local : Local or None
+        Of a single sample: its fit and what it looks like there.
     """
 
     account: Account
@@ -137,6 +147,7 @@ class Estimate:
     failed: Mapping[int, Fault] = field(default_factory=dict)
     first: int = 0
     notes: tuple[Note, ...] = ()
+    local: Local | None = None
 
     @property
     def feed_flows(self) -> FloatArray:
@@ -144,28 +155,49 @@ class Estimate:
         return np.asarray(self.z @ self.account.feed_map.T)
 
     @property
+    def fresh_flows(self) -> FloatArray:
+        """Flows from outside, shape (..., S), mol/s (batch: mol)."""
+        return np.asarray(self.z @ self.account.fresh_map.T)
+
+    @property
     def outlet_flows(self) -> FloatArray:
         """Flows out of the reactor, shape (..., S), mol/s (batch: mol)."""
         return np.asarray(self.z @ self.account.outlet_map.T)
 
     def stream_forms(self, g: int) -> FloatArray:
-        """Return the flows in stream ``g`` as linear forms of ``z``, shape (S, n).
+        """Return the slopes of the flows in stream ``g`` over ``z``, shape (S, n).
 
-        Streams are counted from 0, feeds followed by outlets.
+        Streams are counted from 0, as in :attr:`Account.streams`. Where the
+        split has a part in the flows each sample has its own, (..., S, n).
         """
-        count = len(self.account.problem.reactions.substances)
-        return self.account.stream_map[g * count : (g + 1) * count]
+        return self.account.stream_forms(g, self.z)
 
     def stream_flows(self, g: int) -> FloatArray:
-        """Return the flows in stream ``g``, feeds followed by outlets, shape (..., S), mol/s.
+        """Return the flows in stream ``g``, shape (..., S), mol/s.
 
         Not a number where the readings do not tell how a substance is shared
-        out among the outlet streams. Uncertainties: :meth:`u_of` the
+        out among streams that leave. Uncertainties: :meth:`u_of` the
         :meth:`stream_forms`.
         """
         forms = self.stream_forms(g)
         told = ~((~self.told[..., None, :]) & (forms != 0)).any(axis=-1)
-        return np.where(told, self.z @ forms.T, np.nan)
+        return np.where(told, self.account.stream_flows(g, self.z), np.nan)
+
+    @property
+    def product_forms(self) -> FloatArray:
+        """Slopes of the flows in all products together; as :meth:`stream_forms`."""
+        account = self.account
+        if account.purge is None:
+            return account.leaving_map
+        return np.asarray(account.leaving_map - self.stream_forms(account.purge))
+
+    @property
+    def product_flows(self) -> FloatArray:
+        """Flows in all products together, shape (..., S); as :meth:`stream_flows`."""
+        leaving = self.account.product_flows(self.z)
+        if self.account.purge is None:
+            return leaving
+        return np.where(np.isfinite(self.stream_flows(self.account.purge)), leaving, np.nan)
 
     @property
     def extents(self) -> FloatArray:
@@ -181,30 +213,27 @@ class Estimate:
         return np.asarray(forms @ self.covariance @ forms.T)
 
     def u_of(self, forms: FloatArray) -> FloatArray:
-        """Standard uncertainties of linear forms (k, n) of ``z``, shape (..., k)."""
+        """Standard uncertainties of linear forms (k, n) of ``z``, or (..., k, n); (..., k)."""
         variance = ((forms @ self.covariance) * forms).sum(axis=-1)
         return np.asarray(np.sqrt(np.maximum(variance, 0.0)))
 
-    def liquid_volume(self, side: Literal["feed", "outlet"]) -> FloatArray | None:
-        """Volumetric flow of the liquid streams of a side, shape (...), m3/s (batch: m3).
+    def liquid_volume(self, streams: Iterable[int]) -> FloatArray | None:
+        """Volumetric flow of the liquids among some streams, shape (...), m3/s (batch: m3).
 
         Not a number where the readings do not tell it; None where none of
         them speaks of it.
         """
-        form = self.liquid_volume_form(side)
+        form = self.liquid_volume_form(streams)
         if form is None:
             return None
         told = self.told[..., form != 0].all(axis=-1)
         return np.asarray(np.where(told, self.z @ form, np.nan))
 
-    def liquid_volume_form(self, side: Literal["feed", "outlet"]) -> FloatArray | None:
+    def liquid_volume_form(self, streams: Iterable[int]) -> FloatArray | None:
         """That volumetric flow in terms of the unknowns, shape (n,)."""
-        problem = self.account.problem
-        feeds = len(problem.feed)
+        account = self.account
         rows = [
-            self.account.writer.place(g, VOLUME)
-            for g, stream in enumerate(self.account.streams)
-            if (g < feeds) == (side == "feed") and stream.phase == "liquid"
+            account.writer.place(g, VOLUME) for g in streams if account.streams[g].phase == "liquid"
         ]
         forms = self.account.stream_map[rows]
         if not rows or not forms.any(axis=1).all():

@@ -15,17 +15,15 @@ from itertools import combinations
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fact, Fault, Readings, Subject
-from core.outlet_analysis.account import Account, fed_in, listed
+from core.outlet_analysis.account import Account, describe_stream, fed_in, listed
 from core.outlet_analysis.budget import WORK_OF_SETTLING
 from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import IntArray
 from core.outlet_analysis.readings import (
     FRACTIONS,
     VOLUME,
     ReadingWriter,
-    describe_stream,
 )
 from core.streams.metered import Analysis, Basis, FlowKind, FlowReading, Measurement
 
@@ -35,6 +33,9 @@ CANCELLED = 1e-9
 """Slope of a reading, relative to that of what it counts, which is rounding alone."""
 TOUCHED = 1e-6
 """Part of an open direction that a quantity must take to be open itself."""
+SETTLED = 1e-8
+"""Part of what was open that further readings may leave: less than TOUCHED, since where a split is
+among the unknowns the slopes are others once there are values."""
 USEFUL = 1e-3
 """Part of its slope along what is open that a further reading must have to be worth making."""
 LARGEST_SET = 3
@@ -46,6 +47,8 @@ FLOW_WORDS: dict[bool, dict[FlowKind, str]] = {
     True: {"amount": "amount", "mass": "mass", "volume": "volume"},
 }
 """What is metered of a flow, and of a batch."""
+FEED_WORDS = {False: "feed", True: "fresh feed"}
+"""What comes from outside is called, without a recycle and with one."""
 
 
 def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatArray) -> FloatArray:
@@ -57,7 +60,10 @@ def equilibrated(forms: Forms, z: FloatArray, active: BoolArray, natural: FloatA
     found = forms.at(z)
     rows = forms.jacobian(found) * natural[:, None, :]
     length = np.sqrt((rows * rows).sum(axis=-1))
-    counted = np.sqrt((natural * natural) @ (forms.numerators * forms.numerators).T)
+    if forms.split is None:
+        counted = np.sqrt((natural * natural) @ (forms.numerators * forms.numerators).T)
+    else:
+        counted = np.linalg.norm(found.numerators * natural[:, None, :], axis=-1)
     usable = active & (length > CANCELLED * np.abs(found.product) * counted) & (length > 0)
     scaled: FloatArray = rows * np.where(usable, 1 / np.where(usable, length, 1.0), 0.0)[..., None]
     return scaled
@@ -127,7 +133,7 @@ def taken_as_absent(
         return none
     substances = {account.unknowns[column].index for column in columns.tolist()}
     others = np.array([i not in substances for i in range(len(inert))])
-    kept = [account.feed_map[others]]
+    kept = [account.feed_map[others], account.fresh_map[others], account.returned_map[others]]
     if problem.outlet:
         key = problem.key
         slope = _conversion_slope(account.feed_map[key], account.outlet_map[key], z)
@@ -135,7 +141,7 @@ def taken_as_absent(
     if touched(np.concatenate(kept), natural, directions).any():
         return none
     rest = without_columns(directions, columns)
-    flows = np.concatenate([account.feed_map, account.outlet_map])
+    flows = np.concatenate([account.feed_map, account.outlet_map, account.returned_map])
     return none if touched(flows, natural, rest).any() else columns
 
 
@@ -147,15 +153,27 @@ def without_columns(directions: FloatArray, columns: IntArray) -> FloatArray:
 
 
 def _removed_from_feed(account: Account) -> list[tuple[int, int]]:
-    """Feed stream and substance of everything that was fully removed and may be there."""
+    """Feed stream and substance of everything that was fully removed and may be there.
+
+    What another analysis of the same stream has read is no longer in question.
+    """
     found = [
         (g, removal.substance)
         for g, stream in enumerate(account.problem.feed)
         for analysis in stream.analyses
         for removal in analysis.removed
-        if removal.residual == 0 and removal.substance in fed_in(stream)
+        if removal.residual == 0
+        and removal.substance in fed_in(stream)
+        and not any(_reads(other, removal.substance) for other in stream.analyses)
     ]
     return list(dict.fromkeys(found))
+
+
+def _reads(analysis: Analysis, substance: int) -> bool:
+    """Whether a value of an analysis counts a substance, or its balance is that."""
+    return substance == analysis.balance or any(
+        substance in component.weights for component in analysis.components
+    )
 
 
 @dataclass(frozen=True, eq=False)
@@ -165,8 +183,9 @@ class _Candidate:
     Attributes
     ----------
     words : str
-    slope : ndarray, shape (n,)
-        In natural sizes.
+    slope : ndarray, shape (k, n)
+        In natural sizes; of a stream of its own for a substance that is removed
+        from the samples of several feeds, in each of them.
     flow : bool
         It tells how much flows.
     claims : frozenset of (stream, place, what)
@@ -212,7 +231,7 @@ def under_determined(
     directions = open_directions(scaled)
     words: list[str] = []
     fed, left = account.feed_map, account.outlet_map
-    reported = [fed]
+    reported, where = [fed], [(fed, "fed")]
     if account.problem.outlet:
         converted = _conversion_slope(fed[key], left[key], z)
         if touched(converted[None], natural, directions)[0]:
@@ -223,10 +242,22 @@ def under_determined(
             for j in np.flatnonzero(of_extents)
         ]
         reported += [left, account.extent_map]
-    for forms, where in ((fed, "fed"), (left, "leaving")):
+        where.append((left, "leaving"))
+    if account.problem.recycle is not None:
+        into, out = account.fresh_map[key], account.leaving_map[key]
+        if touched(_conversion_slope(into, out, z)[None], natural, directions)[0]:
+            words.insert(0, f"the overall conversion of {names[key]}")
+        reported += [account.fresh_map, account.returned_map]
+        where = [
+            (account.fresh_map, "in the fresh feed"),
+            (account.returned_map, "in the recycle"),
+            (fed, "into the reactor"),
+            (left, "out of it"),
+        ]
+    for forms, place in where:
         found = [names[i] for i in np.flatnonzero(touched(forms, natural, directions))]
         if found:
-            words.append(f"the {flow} of {listed(found)} {where}")
+            words.append(f"the {flow} of {listed(found)} {place}")
     subject: Subject = ("outlet",) if account.problem.outlet else ("feed",)
     if not words:
         return Fault(
@@ -249,11 +280,11 @@ def under_determined(
     open_flows = touched(account.stream_map, natural, directions)
     for k, (g, i) in enumerate(_removed_from_feed(account)):
         if open_flows[g * len(names) + i]:
-            where = describe_stream(account.streams, len(account.problem.feed), g)
+            stream = describe_stream(account.problem, g)
             facts[f"removed_{k}"] = names[i]
             detail += (
-                f". {{removed_{k}}} is removed from the sample of {where}, and no reading tells its"
-                f" {flow}"
+                f". {{removed_{k}}} is removed from the sample of {stream}, and no reading tells"
+                f" its {flow}"
             )
     if missing:
         detail += ". Missing here: {missing}"
@@ -276,16 +307,20 @@ def _candidates(account: Account, z: FloatArray, natural: FloatArray) -> list[_C
     forms = _Further(account)
     for g in range(len(account.streams)):
         forms.of_stream(g)
-    written = forms.writer.forms().through(account.stream_map)
+    written = account.over_unknowns(forms.writer.forms())
     scaled = equilibrated(written, z[None], np.ones((1, len(forms.words)), bool), natural[None])[0]
     told = scaled.any(axis=1)
-    return [
-        _Candidate(words, slope, flow, claims)
-        for (words, claims), slope, flow, tells in zip(
-            forms.words, scaled, forms.writer.flow, told, strict=True
-        )
-        if tells
-    ]
+    found: dict[str, _Candidate] = {}
+    for (words, claims), slope, flow, tells in zip(
+        forms.words, scaled, forms.writer.flow, told, strict=True
+    ):
+        if not tells:
+            continue
+        slopes = slope[None]
+        if words in found:
+            slopes = np.concatenate([found[words].slope, slopes])
+        found[words] = _Candidate(words, slopes, flow, claims)
+    return list(found.values())
 
 
 class _Further:
@@ -310,9 +345,9 @@ class _Further:
         A stream states the flows of its substances, or an analysis with or
         without its total flow.
         """
-        stream, count = self.streams[g], len(self.names)
-        where = describe_stream(self.streams, self.feeds, g)
-        rows = self.account.stream_map[g * count : (g + 1) * count]
+        stream = self.streams[g]
+        where = describe_stream(self.account.problem, g)
+        rows = self.account.stream_forms(g, np.ones(len(self.account.unknowns)))
         carried = np.flatnonzero(np.any(rows != 0, axis=1)).tolist()
         by_substance = {f.substance for f in stream.flows if f.substance is not None}
         if stream.analyses or not by_substance:
@@ -324,12 +359,15 @@ class _Further:
                     words = f"the {self.flow_words['amount']} of {self.names[i]} in {where}"
                     self.note(words, (g, "form", "flows"))
         elif g < self.feeds:
-            for stream_, i in _removed_from_feed(self.account):
+            removed = _removed_from_feed(self.account)
+            for stream_, i in removed:
                 if stream_ == g and i in carried:
                     self._flow(g, FlowReading("amount", BLANK, substance=i))
                     self.note(
-                        f"the {self.flow_words['amount']} of {self.names[i]}, as a feed stream of"
-                        " its own"
+                        f"the {self.flow_words['amount']} of {self.names[i]}, as a"
+                        f" {FEED_WORDS[self.account.problem.recycle is not None]} stream of its"
+                        " own",
+                        *((h, self.names[i], "alone") for h, j in removed if j == i),
                     )
         self._volume(g, where)
 
@@ -356,6 +394,7 @@ class _Further:
                     self.note(
                         f"the {share} of {self.names[i]} in {place} {where}",
                         (g, "form", "analysis"),
+                        (g, self.names[i], "in the stream"),
                     )
         if any(reading.substance is None for reading in stream.flows):
             return
@@ -408,9 +447,9 @@ def _settling(
     per_key = scaled[-1:] @ directions
     if not candidates:
         return []
-    seen = np.array([candidate.slope for candidate in candidates]) @ directions
+    seen = [candidate.slope @ directions for candidate in candidates]
     wanted = target @ directions
-    strength = np.linalg.norm(seen, axis=1)
+    strength = np.array([np.linalg.norm(of, axis=1).max() for of in seen])
     # Those that see most of what is open come first; alike ones keep their order.
     order = np.argsort(-np.round(strength, 2), kind="stable")
     useful = [int(k) for k in order if strength[k] > USEFUL]
@@ -419,7 +458,7 @@ def _settling(
 
     def left_open(rows: list[int]) -> FloatArray:
         """Orthonormal basis of what stays open with some candidates read."""
-        of = seen[rows]
+        of = np.concatenate([np.empty((0, directions.shape[1])), *(seen[k] for k in rows)])
         if not any(candidates[k].flow for k in rows):
             of = np.concatenate([of, per_key])
         _, values, right = np.linalg.svd(of, full_matrices=True)
@@ -428,7 +467,7 @@ def _settling(
     def settles(rows: list[int]) -> bool:
         if not _can_be_stated(candidates[k] for k in rows):
             return False
-        return bool(np.linalg.norm(wanted @ left_open(rows)) <= 10 * TOUCHED * need)
+        return bool(np.linalg.norm(wanted @ left_open(rows)) <= SETTLED * need)
 
     found: list[tuple[str, ...]] = []
     for size in range(1, LARGEST_SET + 1):
@@ -455,5 +494,9 @@ def _settling(
             break
         chosen_rows.append(best)
         if settles(chosen_rows):
+            # What was taken first may be told by what came later.
+            for k in tuple(chosen_rows):
+                fewer = [j for j in chosen_rows if j != k]
+                chosen_rows = fewer if settles(fewer) else chosen_rows
             return [tuple(candidates[k].words for k in chosen_rows)]
     return found

@@ -15,12 +15,14 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.budget import NEARLY_EXACT
-from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import Fit, IntArray, linear_step
+from core.outlet_analysis.correlations import Correlated
+from core.outlet_analysis.forms import Forms, each
+from core.outlet_analysis.gauss_newton import Fit, linear_step
+from core.outlet_analysis.mixture import Mixture, mixture_of
 from core.outlet_analysis.readings import ABOVE, BELOW, MOLAR_DENSITY, VOLUME
 
 BLOCK = 2048
@@ -31,25 +33,44 @@ DEPENDENT = 1e-6
 AGREEMENT = 1e-8
 """Within this, relative, exact readings that say the same thing agree."""
 START_RIDGE = 1e-10
+SPLITS = (0.1, 0.001, 0.003, 0.01, 0.03, 0.3, 1.0, 3.0, 10.0, 100.0)
+"""Purged over returned, to try first guesses with: a usual one, then what plants do."""
+LEAST_SPLIT = 1e-3
+"""Size of a split next to nothing, for scaling."""
+HALVINGS = 40
+FAR = 10.0
+"""How many times a split or the largest flow may grow or fall from one first guess to the next."""
+TINY = 1e-300
 
 
 @dataclass(frozen=True, eq=False)
 class Block:
-    """Readings of N samples as they enter the fit, with the row that fixes the scale.
+    """Readings of N samples as they enter the fit, with the rows that hold by definition.
+
+    They are m readings, then the e equations of the account, then the key fed,
+    which fixes the scale where no reading does; r of them together.
 
     Attributes
     ----------
     account : Account
     forms : Forms
-        Over the unknowns: m readings, then the key fed.
-    measured, u : ndarray, shape (N, m + 1)
+        Over the unknowns.
+    measured, u : ndarray, shape (N, r)
         What enters; limits as mean and standard deviation.
-    active : ndarray of bool, shape (N, m + 1)
-    bound : ndarray of int8, shape (N, m + 1)
+    active : ndarray of bool, shape (N, r)
+    bound : ndarray of int8, shape (N, r)
         0 also where the limit is missing.
-    limit : ndarray, shape (N, m + 1)
+    limit : ndarray, shape (N, r)
     nominal : ndarray, shape (N, n)
         A plausible value of each unknown.
+    near : ndarray, shape (N, n)
+        Where the readings are made linear for a first guess; other than
+        ``nominal`` only where a split is among the unknowns.
+    others : ndarray, shape (N, k, n)
+        Where to start from where the first guess leads nowhere; k is 0 without a split.
+    correlated : Correlated or None
+    start : ndarray, shape (n,), or None
+        Where to start every sample, in place of a first guess.
     """
 
     account: Account
@@ -60,10 +81,14 @@ class Block:
     bound: NDArray[np.int8]
     limit: FloatArray
     nominal: FloatArray
+    near: FloatArray
+    others: FloatArray
+    correlated: Correlated | None = None
+    start: FloatArray | None = None
 
     @property
     def exact(self) -> BoolArray:
-        """Which readings are exact, shape (N, m + 1)."""
+        """Which readings are exact, shape (N, r)."""
         return np.asarray(self.active & (self.u == 0))
 
     @property
@@ -83,21 +108,30 @@ class Group:
         Their places in the block.
     fit : Fit
     start : ndarray, shape (len(rows), n)
+    judged : ndarray, shape (len(rows), n)
+        Near there, where what the readings leave open is judged.
     natural : ndarray, shape (len(rows), n)
         Size of each unknown: that of the largest flow, or its own.
     dependent : ndarray of int
         Exact readings left out because the others imply them.
+    others : tuple of ndarray, shape (len(rows), n)
+        Where else to start from.
     """
 
     rows: IntArray
     fit: Fit
     start: FloatArray
+    judged: FloatArray
     natural: FloatArray
     dependent: IntArray
+    others: tuple[FloatArray, ...]
 
 
-def prepare(account: Account, rows: slice | IntArray) -> Block:
-    """Return the samples ``rows`` of the account's readings, ready to be fitted."""
+def prepare(account: Account, rows: slice | IntArray, start: FloatArray | None = None) -> Block:
+    """Return the samples ``rows`` of the account's readings, ready to be fitted.
+
+    They are started at ``start``, shape (n,), where given.
+    """
     readings = account.readings
     value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
     active = np.isfinite(value)
@@ -114,34 +148,58 @@ def prepare(account: Account, rows: slice | IntArray) -> Block:
     sigma = np.where(sigma < SQUARE_UNDERFLOWS, 0.0, sigma)
     # A flow that is exactly nothing does not tell how much the others are.
     flowing = (active & readings.flow & ((measured != 0) | (sigma > 0))).any(axis=1)
-    column = np.ones((len(measured), 1))
-    measured = np.concatenate([measured, column], axis=1)
-    sigma = np.concatenate([sigma, 0 * column], axis=1)
-    active = np.concatenate([active, ~flowing[:, None]], axis=1)
-    bound = np.concatenate([bound, np.zeros((len(bound), 1), dtype=np.int8)], axis=1)
-    limit = np.concatenate([limit, column], axis=1) if bound.any() else measured
+    equations = len(account.equations)
+    more = np.zeros((len(measured), equations + 1))
+    more[:, -1] = 1.0
+    there = np.ones(more.shape, dtype=bool)
+    there[:, -1] = ~flowing
+    measured = np.concatenate([measured, more], axis=1)
+    sigma = np.concatenate([sigma, 0 * more], axis=1)
+    active = np.concatenate([active, there], axis=1)
+    bound = np.concatenate([bound, np.zeros(more.shape, dtype=np.int8)], axis=1)
+    limit = np.concatenate([limit, more], axis=1) if bound.any() else measured
 
-    forms = readings.forms.samples(rows).through(account.stream_map)
-    constants = forms.constants
-    forms = Forms(
-        np.concatenate([constants, np.ones((*constants.shape[:-1], 1))], axis=-1),
-        np.concatenate([forms.numerators, account.feed_map[[account.problem.key]]]),
-        forms.bases,
-        np.concatenate([forms.exponents, np.zeros((1, forms.exponents.shape[1]))]),
+    correlated = None
+    if readings.correlated is not None:
+        proper = active & (bound == 0) & (sigma > 0)
+        correlated = _between_proper(readings.correlated.samples(rows), proper)
+    forms = account.over_unknowns(readings.forms.samples(rows))
+    if equations:
+        forms = forms.beside(account.equations, account.split_equations)
+    forms = forms.beside(account.feed_map[[account.problem.key]])
+    nothing = np.empty(0)
+    block = Block(
+        account, forms, measured, sigma, active, bound, limit, nothing, nothing, nothing, correlated
     )
-    block = Block(account, forms, measured, sigma, active, bound, limit, np.empty(0))
     per_mole = readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[rows]
-    return replace(block, nominal=_nominal(block, per_mole))
+    nominal = _nominal(block, per_mole)
+    block = replace(block, nominal=nominal, near=nominal, others=nominal[:, None][:, :0])
+    if start is not None:
+        return replace(block, near=np.tile(start, (len(measured), 1)), start=start)
+    return block if account.split < 0 else _split_guessed(block, per_mole)
+
+
+def _between_proper(of: Correlated, proper: BoolArray) -> Correlated:
+    """Return the correlations of the readings that are proper ones in their sample, (N, m)."""
+    there = proper[:, of.rows]
+    if there.all():
+        return of
+    both = there[:, :, None] & there[:, None, :]
+    return Correlated(of.rows, np.where(both, of.coefficients, np.eye(len(of.rows))))
 
 
 def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
     """Orders of magnitude of every unknown from single readings, shape (N, n)."""
     account, measured, active = block.account, block.measured, block.active
     readings = account.readings
-    metered = active[:, :-1] & readings.flow
-    flow = np.where(metered, np.abs(measured[:, :-1]) / per_mole, 0.0).max(axis=1, initial=0.0)
+    m = len(readings.subjects)
+    metered = active[:, :m] & readings.flow
+    flow = np.where(metered, np.abs(measured[:, :m]) / per_mole, 0.0).max(axis=1, initial=0.0)
     flow = np.where(flow > 0, flow, 1.0)
     share = account.of_flow + 0.05 * account.of_extent
+    # What leaves is shared out, so that the last outlet stream is left its part.
+    feeds, outlets = len(account.problem.feed), len(account.problem.outlet)
+    share[[of.kind == "flow" and of.stream >= feeds for of in account.unknowns]] /= outlets or 1
     nominal: FloatArray = flow[:, None] * (share / max(1, np.count_nonzero(account.of_flow)))
     for column in np.flatnonzero(share == 0).tolist():
         unknown = account.unknowns[column]
@@ -151,12 +209,71 @@ def _nominal(block: Block, per_mole: FloatArray) -> FloatArray:
             peaks = account.writer.places[unknown.stream, unknown.index]
             values = np.where(active[:, peaks], measured[:, peaks], 0.0).sum(axis=1)
             nominal[:, column] = np.where(values > 0, values, 1.0)
+        elif unknown.kind == "split":
+            nominal[:, column] = SPLITS[0]
         else:
             reading = getattr(account.streams[unknown.stream], unknown.kind)
             row = readings.subjects.index(reading.subject)
             usual = 300.0 if unknown.kind == "temperature" else 1e5
             nominal[:, column] = np.where(active[:, row], measured[:, row], usual)
     return nominal
+
+
+def _split_guessed(block: Block, per_mole: FloatArray) -> Block:
+    """Choose, sample by sample, the split with which the readings, made linear, agree best.
+
+    It is what meters of purge and recycle say, or one of a row that covers what
+    plants do.
+    """
+    account, nominal = block.account, block.nominal
+    column = account.split
+    best = np.full(len(nominal), np.inf)
+    chosen, near = np.array(nominal), np.array(nominal)
+    others, misfits = [], []
+    for split in (_metered_split(block, per_mole), *SPLITS):
+        usual = np.array(nominal)
+        usual[:, column] = split
+        # What is returned and purged together is no more than half of what leaves with it.
+        usual[:, account.returned_map.any(axis=0)] *= np.minimum(1.0, 0.5 / usual[:, [column]])
+        # Made linear where nothing is returned, the readings hold with this split as it is.
+        held = np.zeros_like(usual)
+        held[:, column] = split
+        slopes, right, u = linearised(replace(block, nominal=usual, near=held))
+        size = np.abs(slopes * usual[:, None, :]).max(axis=-1)
+        u = np.maximum(u, NEARLY_EXACT * np.maximum(size, np.abs(right)))
+        weight = _weights(block.active & (u > 0), u)
+        nothing = np.empty((len(nominal), 0))
+        z = linear_step(
+            slopes, right, weight, np.empty(0, dtype=np.intp), nothing, usual, START_RIDGE
+        )
+        z[:, column] = usual[:, column]
+        residual = right - (slopes @ z[:, :, None])[:, :, 0]
+        misfit = (weight * residual * residual).sum(axis=1)
+        # Flows below zero may be what fits best: they count against it.
+        flows = account.every_flow(z)
+        below = -np.minimum(flows, 0).sum(axis=1) / np.abs(flows).sum(axis=1)
+        misfit = (1 + misfit) * (1 + 100 * below) ** 2
+        others.append(z)
+        misfits.append(misfit)
+        better = misfit < best
+        best = np.where(better, misfit, best)
+        chosen[better], near[better] = usual[better], z[better]
+    order = np.argsort(np.stack(misfits, axis=1), axis=1, kind="stable")
+    ranked = np.take_along_axis(np.stack(others, axis=1), order[:, :, None], axis=1)
+    return replace(block, nominal=chosen, near=near, others=ranked)
+
+
+def _metered_split(block: Block, per_mole: FloatArray) -> FloatArray:
+    """What meters of purge and recycle say of the split, shape (N,); else a usual one."""
+    account, m = block.account, len(block.account.readings.subjects)
+    readings = account.readings
+    metered = block.active[:, :m] & readings.flow
+    flow = np.where(metered, block.measured[:, :m] / per_mole, 0.0)
+    returned, purged = (
+        flow[:, readings.stream == g].sum(axis=1) for g in (account.returned, account.purge)
+    )
+    told = (returned > 0) & (purged > 0)
+    return np.where(told, np.where(told, purged, 1.0) / np.where(told, returned, 1.0), SPLITS[0])
 
 
 def _volume(block: Block, g: int, flow: FloatArray) -> FloatArray:
@@ -179,17 +296,23 @@ def linearised(block: Block) -> tuple[FloatArray, FloatArray, FloatArray]:
     pressure gauge or the sum of the peaks states beforehand is put in.
     """
     readings, forms, nominal = block.account.readings, block.forms, block.nominal
-    base = nominal @ forms.bases.T
+    base = forms.bases_at(nominal)
     base = np.where(base > 0, base, 1.0)
     known = forms.exponents * readings.known
-    factor = forms.constants * np.exp(np.log(base) @ known.T)
-    slopes = factor[:, :, None] * forms.numerators
+    factor = forms.constants * np.exp(each(known, np.log(base)))
+    numerators, bases = forms.tangents(block.near)
+    slopes = factor[:, :, None] * numerators
     right, u = np.array(block.measured), np.array(block.u)
     ratios = np.flatnonzero(readings.cleared >= 0)
     cleared = readings.cleared[ratios]
-    slopes[:, ratios] -= block.measured[:, ratios, None] * forms.bases[cleared]
+    slopes[:, ratios] -= block.measured[:, ratios, None] * bases[..., cleared, :]
     right[:, ratios] = 0.0
     u[:, ratios] *= base[:, cleared]
+    if forms.split is not None:
+        # What the tangents of products of two unknowns leave over.
+        over_numerators, over_bases = forms.split.products(block.near)
+        right += factor * over_numerators
+        right[:, ratios] -= block.measured[:, ratios] * over_bases[:, cleared]
     return slopes, right, u
 
 
@@ -218,7 +341,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
     if not whole:
         forms = block.forms
         if forms.constants.ndim > 1:
-            forms = Forms(forms.constants[rows], forms.numerators, forms.bases, forms.exponents)
+            forms = forms.samples(rows)
         block = Block(
             block.account,
             forms,
@@ -228,6 +351,10 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
             block.bound[rows],
             block.limit[rows],
             block.nominal[rows],
+            block.near[rows],
+            block.others[rows],
+            None if block.correlated is None else block.correlated.samples(rows),
+            block.start,
         )
     slopes, right, u = linearised(block)
     exact = np.flatnonzero(kind == 1)
@@ -242,17 +369,29 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
     stiff, soft = kept, block.active
     if len(nearly):
         stiff = np.union1d(kept, nearly).astype(np.intp)
+    linked = None
+    if block.correlated is not None:
+        linked = np.setdiff1d(block.correlated.rows, exact)
+        stiff = np.union1d(stiff, linked).astype(np.intp)
     if len(exact) or len(stiff):
         soft = soft.copy()
         soft[:, stiff] = False
         soft[:, dependent] = False
     there = block.active[:, stiff]
+    compliance = np.where(there, block.u[:, stiff] ** 2, np.inf)
+    of_start = np.where(there, u[:, stiff] ** 2, np.inf)
+    mixture = start_mixture = None
+    if linked is not None and len(linked):
+        mixture, compliance = _mixture(block, stiff, linked)
+        start_mixture = mixture.rescaled(u[:, stiff])
+        of_start = np.where(mixture.linked, compliance, of_start)
     fit = Fit(
         block.forms,
         block.measured,
         _weights(soft, block.u),
         stiff,
-        np.where(there, block.u[:, stiff] ** 2, np.inf),
+        compliance,
+        mixture,
     )
     start_weight = _weights(soft, u)
     start = linear_step(
@@ -260,12 +399,34 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
         right,
         start_weight,
         stiff,
-        np.where(there, u[:, stiff] ** 2, np.inf),
+        of_start,
         block.nominal,
         START_RIDGE,
+        start_mixture,
     )
-    start = _inside(block, start)
-    return Group(rows, fit, start, natural_size(block.account, start), dependent)
+    if block.start is not None:
+        start = np.tile(block.start, (len(start), 1))
+    else:
+        if block.account.split >= 0:
+            start = _not_far(block, start)
+        start = _inside(block, start)
+    others = [_inside(block, block.others[:, k]) for k in range(block.others.shape[1])]
+    judged = start if block.account.split < 0 else meeting_equations(block.account, start)
+    natural = natural_size(block.account, start)
+    return Group(rows, fit, start, judged, natural, dependent, tuple(others))
+
+
+def _mixture(block: Block, stiff: IntArray, linked: IntArray) -> tuple[Mixture, FloatArray]:
+    """Return the combinations of the stiff readings, ``linked`` those that are correlated."""
+    of = block.correlated
+    assert of is not None
+    at, among = np.searchsorted(stiff, linked), np.searchsorted(of.rows, linked)
+    c = len(stiff)
+    coefficients = np.array(np.broadcast_to(np.eye(c), (len(of.coefficients), c, c)))
+    coefficients[:, at[:, None], at] = of.coefficients[:, among[:, None], among]
+    is_linked = np.zeros(c, dtype=bool)
+    is_linked[at] = True
+    return mixture_of(is_linked, block.active[:, stiff], block.u[:, stiff], coefficients)
 
 
 def _weights(soft: BoolArray, u: FloatArray) -> FloatArray:
@@ -278,13 +439,53 @@ def _inside(block: Block, start: FloatArray) -> FloatArray:
     bases = block.forms.bases
     if not len(bases):
         return start
-    base, usual = start @ bases.T, block.nominal @ bases.T
+    base, usual = block.forms.bases_at(start), block.forms.bases_at(block.nominal)
     least = 0.05 * usual
     low = (base < least) & (usual > 0)
     if not low.any():
         return start
     share = np.where(low, (usual - least) / np.where(low, usual - base, 1.0), 1.0).min(axis=1)
-    return np.asarray(block.nominal + share[:, None] * (start - block.nominal))
+    return _between(block, start, share)
+
+
+def _not_far(block: Block, start: FloatArray) -> FloatArray:
+    """Take the guess with a split held instead where the tangent there leads far away."""
+    account, near = block.account, block.near
+    change = start[:, account.split] / near[:, account.split]
+    size = account.largest_flow(start) / np.maximum(account.largest_flow(near), TINY)
+    far = ~((change > 1 / FAR) & (change < FAR) & (size < FAR))
+    return np.where(far[:, None], near, start)
+
+
+def meeting_equations(account: Account, start: FloatArray) -> FloatArray:
+    """Have what is returned be what leaves over the split, where that is an equation.
+
+    Away from there the readings seem to tell things that they do not.
+    """
+    start = np.array(start)
+    split = start[:, account.split]
+    there = split != 0
+    for leaving, times in zip(account.equations, account.split_equations, strict=True):
+        for column in np.flatnonzero(times).tolist():
+            returned = start @ leaving / np.where(there, -times[column] * split, 1.0)
+            start[:, column] = np.where(there, returned, start[:, column])
+    return start
+
+
+def _between(block: Block, start: FloatArray, share: FloatArray) -> FloatArray:
+    """Part of the way from the nominal unknowns to others, with every base positive."""
+    way = start - block.nominal
+    found = np.asarray(block.nominal + share[:, None] * way)
+    if block.forms.split is None:
+        return found
+    # Totals bend on the way where a split is among the unknowns.
+    for _ in range(HALVINGS):
+        outside = ~block.forms.inside(found)
+        if not outside.any():
+            break
+        share = np.where(outside, share / 2, share)
+        found = np.asarray(block.nominal + share[:, None] * way)
+    return found
 
 
 def natural_size(account: Account, z: FloatArray) -> FloatArray:
@@ -295,6 +496,8 @@ def natural_size(account: Account, z: FloatArray) -> FloatArray:
     size = np.broadcast_to(largest[:, None], z.shape)
     if own.any():
         size = np.where(own & (z != 0), np.abs(z), size)
+    if account.split >= 0:
+        size[:, account.split] = np.maximum(np.abs(z[:, account.split]), LEAST_SPLIT)
     return size
 
 
@@ -330,7 +533,7 @@ def _independent(
     scaled = slopes[kept] * size
     point = np.linalg.lstsq(scaled, right[kept], rcond=None)[0]
     seen = np.flatnonzero((block.forms.exponents[block.active[0]] != 0).any(axis=0))
-    for base in block.forms.bases[seen] * size:
+    for base in block.forms.tangents(block.near[:1])[1].reshape(-1, len(size))[seen] * size:
         free = base - basis.T @ (basis @ base)
         if np.linalg.norm(free) < DEPENDENT * np.linalg.norm(base) and base @ point < AGREEMENT * (
             np.abs(base).sum()

@@ -6,11 +6,12 @@ Linear propagation through the covariance of the unknowns (GUM, JCGM 100:2008,
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 
-from core.arrays import FloatArray
+from core.arrays import BoolArray, FloatArray
 
 NEAR_ZERO = 2.0
 """A denominator within so many of its standard uncertainties of zero gives no ratio."""
@@ -23,10 +24,39 @@ ROUNDING = 2e-15
 
 @dataclass(frozen=True, eq=False)
 class Uncertain:
-    """Values and their standard uncertainties, of one shape; not a number where absent."""
+    """Values and their standard uncertainties, of one shape; not a number where absent.
+
+    ``low`` and ``high`` are the ends of the coverage interval where it is not
+    simply so many ``u`` to each side.
+    """
 
     value: FloatArray
     u: FloatArray
+    low: FloatArray | None = None
+    high: FloatArray | None = None
+
+    def where(self, known: BoolArray) -> Uncertain:
+        """Return the numbers marked; the others are not numbers."""
+        return self.each(lambda of: np.where(known, of, np.nan))
+
+    def each(self, change: Callable[[FloatArray], FloatArray]) -> Uncertain:
+        """Return value, u and the ends of the interval changed alike."""
+        low, high = self.low, self.high
+        return Uncertain(
+            change(self.value),
+            change(self.u),
+            None if low is None else change(low),
+            None if high is None else change(high),
+        )
+
+    def negative(self) -> Uncertain:
+        """Return the numbers with their signs changed."""
+        return Uncertain(
+            -self.value,
+            self.u,
+            None if self.high is None else -self.high,
+            None if self.low is None else -self.low,
+        )
 
 
 def forms_of(z: FloatArray, covariance: FloatArray, forms: FloatArray) -> Uncertain:

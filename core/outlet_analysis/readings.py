@@ -10,7 +10,7 @@ account and the one that leaves feed and outlet unconnected.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Final
 
@@ -20,9 +20,16 @@ from numpy.typing import NDArray
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Subject, refuse
+from core.outlet_analysis.correlations import Correlated, Correlation, Errors, Shared
 from core.outlet_analysis.forms import Forms
 from core.reactions.reaction_set import ReactionSet
-from core.streams.metered import Analysis, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    FlowReading,
+    Instrument,
+    Measurement,
+    MeteredStream,
+)
 
 BELOW: Final = -1
 ABOVE: Final = 1
@@ -47,13 +54,17 @@ class Series:
     Attributes
     ----------
     value, u : ndarray, shape (N,)
-        SI; not a number where the reading is missing.
+        SI; not a number where the reading is missing. ``u`` is of the reading's
+        own error.
     bound : ndarray of int8, shape (N,), or None
         ``BELOW``, ``ABOVE`` or 0; None where all are readings proper.
     molar_volume : ndarray, shape (N,), or None
         m3/mol at a gas meter's own conditions, where they vary.
     density_ratio : ndarray, shape (N,), or None
         ``ratio`` of the design of a differential-pressure meter, where it varies.
+    shared : Mapping of Instrument to float or ndarray, shape (N,)
+        As :attr:`core.streams.metered.Measurement.shared`: one error all series
+        long, however large its effect on each sample.
     """
 
     value: FloatArray
@@ -61,6 +72,7 @@ class Series:
     bound: NDArray[np.int8] | None = None
     molar_volume: FloatArray | None = None
     density_ratio: FloatArray | None = None
+    shared: Mapping[Instrument, float | FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,7 +85,7 @@ class Readings:
     forms : Forms
         Over the stream space.
     measured, u : ndarray, shape (N, m)
-        As read, SI; not a number where missing.
+        As read, SI; not a number where missing. ``u`` is own and shared parts together.
     bound : ndarray of int8, shape (N, m)
         ``BELOW``, ``ABOVE`` or 0.
     share : ndarray of bool, shape (m,)
@@ -92,6 +104,8 @@ class Readings:
         Further quantities that some reading speaks of.
     samples : int or None
         N; None for a single sample given without a sample axis.
+    correlated : Correlated or None
+        Readings whose errors are not independent.
     """
 
     subjects: tuple[Subject, ...]
@@ -107,14 +121,7 @@ class Readings:
     known: BoolArray
     used: frozenset[tuple[int, int]]
     samples: int | None
-
-
-def describe_stream(streams: tuple[MeteredStream, ...], feeds: int, g: int) -> str:
-    """Return the words for stream ``g`` of feeds followed by outlets."""
-    role, first, count = (
-        ("feed", 0, feeds) if g < feeds else ("outlet", feeds, len(streams) - feeds)
-    )
-    return f"the {role}" if count == 1 else f"{role} stream {g - first + 1}"
+    correlated: Correlated | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -215,18 +222,26 @@ class ReadingWriter:
         """Return the index of the base that is a further quantity of stream ``g``."""
         return self.base((g, quantity), self.further(g, quantity), quantity != VOLUME)
 
-    def sampled(self, g: int, weights: FloatArray, analysis: Analysis) -> FloatArray:
+    def sampled(
+        self,
+        g: int,
+        weights: FloatArray,
+        analysis: Analysis,
+        of_residuals: FloatArray | None = None,
+    ) -> FloatArray:
         """Weights on the stream's flows of what the analyser saw of it.
 
         Only substances of the stream's own phase have a share in what is left
         of a removed one. A removed substance of residual r is r of the moles left, so each mole
-        of the others brings r/(1 - sum of residuals) of it.
+        of the others brings r/(1 - sum of residuals) of it. What is left weighs as
+        ``of_residuals``, by default as the rest: it is in the sample whatever its phase.
         """
         if not analysis.removed:
             return weights
         left = 1 - sum(removal.residual for removal in analysis.removed)
+        weigh = weights if of_residuals is None else of_residuals
         brought = sum(
-            weights[removal.substance] * removal.residual / left for removal in analysis.removed
+            weigh[removal.substance] * removal.residual / left for removal in analysis.removed
         )
         seen = weights + brought * self.own[g]
         for removal in analysis.removed:
@@ -235,7 +250,7 @@ class ReadingWriter:
 
     def sample_total(self, g: int, weights: FloatArray, name: str, analysis: Analysis) -> int:
         """Return the index of the base that is the total of what was analysed."""
-        total = self.flows(g, self.sampled(g, weights * self.own[g], analysis))
+        total = self.flows(g, self.sampled(g, weights * self.own[g], analysis, weights))
         return self.base((g, name, "sample", self.which(g, analysis)), total)
 
     def which(self, g: int, analysis: Analysis) -> int:
@@ -309,14 +324,14 @@ class ReadingWriter:
                 "found a design density of a meter on a liquid; only the density of a gas follows"
                 " from its composition, temperature and pressure. State the flow corrected",
             )
-        weights = self.masses if reading.kind == "mass" else self.ones
+        weights = every = self.masses if reading.kind == "mass" else self.ones
         if reading.substance is None:
             weights = weights * self.own[g]
         else:
-            weights = self.component({reading.substance: 1.0}, weights)
+            weights = every = self.component({reading.substance: 1.0}, weights)
         analysis = self.metered_as(g, reading)
         if analysis is not None:
-            weights = self.sampled(g, weights, analysis)
+            weights = self.sampled(g, weights, analysis, every)
         of_volume = reading.kind == "volume"
         if of_volume and stream.phase == "liquid":
             if reading.substance is not None:
@@ -401,12 +416,15 @@ class ReadingWriter:
                 "found a volumetric flow of a gas at a meter; it needs the temperature and"
                 " pressure of the meter",
             )
-        moles = self.own[g]
+        moles, every = self.own[g], self.ones
         if reading.substance is not None:
-            moles = self.component({reading.substance: 1.0}, self.ones)
+            moles = every = self.component({reading.substance: 1.0}, self.ones)
         mass = moles * self.masses
         if analysis is not None:
-            moles, mass = (self.sampled(g, of, analysis) for of in (moles, mass))
+            moles, mass = (
+                self.sampled(g, of, analysis, residuals)
+                for of, residuals in ((moles, every), (mass, every * self.masses))
+            )
         of_series = self.series.get(reading.measurement.subject)
         ratio: float | FloatArray = design.ratio
         if of_series is not None and of_series.density_ratio is not None:
@@ -569,6 +587,7 @@ def read(
     streams: tuple[MeteredStream, ...],
     feeds: int,
     series: Mapping[Subject, Series],
+    correlations: Sequence[Correlation] = (),
 ) -> tuple[Readings, ReadingWriter]:
     """Write every reading of feeds followed by outlets as a form.
 
@@ -582,7 +601,7 @@ def read(
     ------
     Refused
         A reading that cannot be put as a form, or whose uncertainty or limit
-        makes no sense.
+        makes no sense; also as :meth:`core.outlet_analysis.correlations.Errors.together`.
     """
     writer = ReadingWriter(reactions, streams, feeds, series)
     for g in range(len(streams)):
@@ -603,6 +622,17 @@ def read(
             u[:, column] = found.u
             bound[:, column] = 0 if found.bound is None else found.bound
     measured = np.where(np.isfinite(measured), measured, np.nan)
+    shared: dict[int, Shared] = {
+        k: dict(of.shared) for k, of in enumerate(writer.measurements) if of.shared
+    }
+    for column, reading in enumerate(writer.measurements) if series else ():
+        found = series.get(reading.subject)
+        if found is not None:
+            shared.pop(column, None)
+            if found.shared:
+                shared[column] = found.shared
+    _check_u(writer.measurements, measured, u, bound)
+    u, correlated = Errors(writer.measurements, u, shared).together(correlations)
     forms = writer.forms()
     readings = Readings(
         subjects=tuple(reading.subject for reading in writer.measurements),
@@ -618,8 +648,9 @@ def read(
         known=np.array(writer.known, dtype=bool),
         used=frozenset(writer.used),
         samples=samples,
+        correlated=correlated,
     )
-    _check(readings)
+    _check_limits(readings)
     return readings, writer
 
 
@@ -635,19 +666,28 @@ def _per_mole(writer: ReadingWriter, forms: Forms) -> FloatArray:
     return np.where(plain, mean * forms.constants, typical)
 
 
-def _check(readings: Readings) -> None:
-    there = np.isfinite(readings.measured)
+def _check_u(
+    measurements: Sequence[Measurement],
+    measured: FloatArray,
+    u: FloatArray,
+    bound: NDArray[np.int8],
+) -> None:
+    there = np.isfinite(measured)
     with np.errstate(invalid="ignore"):
-        wrong = there & (readings.bound == 0) & ~(np.isfinite(readings.u) & (readings.u >= 0))
+        wrong = there & (bound == 0) & ~(np.isfinite(u) & (u >= 0))
     if wrong.any():
         row, column = np.argwhere(wrong)[0]
         raise refuse(
             "uncertainty-out-of-range",
-            readings.subjects[column],
+            measurements[column].subject,
             "found a standard uncertainty of {found}; it must be a finite number, 0 or more"
             " (0 is exact)",
-            found=Amount(float(readings.u[row, column])),
+            found=Amount(float(u[row, column])),
         )
+
+
+def _check_limits(readings: Readings) -> None:
+    there = np.isfinite(readings.measured)
     limited = there & (readings.bound != 0)
     if limited.any():
         above = (readings.bound == ABOVE) & readings.share & (readings.measured >= 1)

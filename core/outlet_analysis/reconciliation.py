@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import chdtrc
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Fault, Refused
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.analysis_sums import sum_faults
@@ -29,12 +29,13 @@ from core.outlet_analysis.consistency import (
     without_suspects,
 )
 from core.outlet_analysis.estimate import Estimate, ReadingTable
-from core.outlet_analysis.gauss_newton import SINGULAR, IntArray
+from core.outlet_analysis.gauss_newton import SINGULAR
+from core.outlet_analysis.nonlinearity import Local
 from core.outlet_analysis.observability import TOUCHED
 from core.outlet_analysis.preparation import BLOCK, Block, prepare
 from core.outlet_analysis.readings import BELOW
 from core.outlet_analysis.remarks import remarks
-from core.outlet_analysis.solving import Fitted, fit_block, open_at
+from core.outlet_analysis.solving import Fitted, fit_block, open_at, still_open
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import MeteredStream
 
@@ -84,12 +85,6 @@ def estimates(problem: AccountProblem) -> Iterator[Estimate]:
         yield _estimate_block(account, slice(first, min(first + BLOCK, samples)))
 
 
-def _reported(account: Account) -> FloatArray:
-    if not account.problem.outlet:
-        return account.feed_map
-    return np.concatenate([account.feed_map, account.outlet_map, account.extent_map])
-
-
 def _estimate_block(account: Account, rows: slice) -> Estimate:
     block = prepare(account, rows)
     readings = account.readings
@@ -98,13 +93,16 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
     failed: dict[int, Fault] = {}
     without: tuple[WithoutSuspects, ...] = ()
     ways, cut = 0, False
-    for outcome in fit_block(block, _reported(account)):
+    local = None
+    for outcome in fit_block(block, account.reported):
         if not isinstance(outcome, Fitted):
             failed.update((int(row), outcome[1]) for row in outcome[0])
             continue
         at, fit = outcome.rows, outcome.fit
         stated, unknown = _stated(block, outcome)
         seen = examine(fit, outcome.z, outcome.natural, stated)
+        if readings.samples is None:
+            local = Local(fit, seen.curvature)
         sets = np.zeros((len(at), m), dtype=np.intp)
         if seen.doubtful.any():
             sets, chosen, cut = suspects(outcome, seen, stated, m)
@@ -118,7 +116,10 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.hide(at, unknown[:, :m])
         if len(outcome.absent):
             out.leave_out(at, outcome.absent)
-        for row in np.flatnonzero(~(seen.curvature.inflation < SINGULAR)).tolist():
+        singular = ~(seen.curvature.inflation < SINGULAR)
+        if account.split >= 0:
+            singular |= still_open(account, outcome, block.active[at])
+        for row in np.flatnonzero(singular).tolist():
             one = slice(row, row + 1)
             failed[int(at[row])] = open_at(
                 block, int(at[row]), outcome.z[one], outcome.natural[one]
@@ -143,7 +144,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
             out.freedom > 0, chdtrc(np.maximum(out.freedom, 1), out.chi_square), np.nan
         ),
         inconsistent=(out.chi_square > out.limit) | out.contradicted.any(axis=1),
-        per_mole_of_key=block.active[:, m],
+        per_mole_of_key=block.active[:, -1],
         told=out.told,
         absent=out.absent,
         inflation=out.inflation,
@@ -152,6 +153,7 @@ def _estimate_block(account: Account, rows: slice) -> Estimate:
         cut=cut,
         failed=failed,
         first=rows.start,
+        local=local,
     )
     return replace(result, notes=tuple(remarks(result)))
 
@@ -177,13 +179,17 @@ def _stated(block: Block, fitted: Fitted) -> tuple[Stated, BoolArray]:
 
 
 def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> ReadingTable:
-    bound: NDArray[np.int8] = block.bound[:, :-1]
+    bound: NDArray[np.int8] = block.bound[:, : measured.shape[1]]
     there, limited = np.isfinite(measured), bound != 0
     redundancy = np.where(limited | ~there, np.nan, out.redundancy)
-    checked = redundancy > 0
-    detectable = DETECTABLE * u / np.sqrt(np.where(checked, redundancy, 1.0))
+    checked = ~np.isnan(redundancy) & (out.control > 0)
+    detectable = DETECTABLE * u / np.sqrt(np.where(checked, out.control, 1.0))
     inside = np.where(bound == BELOW, out.reconciled <= measured, out.reconciled >= measured)
     known = limited & there & np.isfinite(out.reconciled)
+    test = np.full_like(out.test, np.nan)
+    if block.correlated is not None:
+        rows = block.correlated.rows
+        test[:, rows] = out.test[:, rows]
     return ReadingTable(
         subjects=block.account.readings.subjects,
         measured=measured,
@@ -192,6 +198,7 @@ def _table(block: Block, measured: FloatArray, u: FloatArray, out: _Results) -> 
         reconciled=out.reconciled,
         reconciled_u=out.reconciled_u,
         adjustment_over_u=out.adjustment,
+        measurement_test=test,
         redundancy=redundancy,
         smallest_detectable_error=np.where(checked, detectable, np.nan),
         suspect_set=out.sets,
@@ -209,7 +216,9 @@ class _Results:
         self.reconciled = np.full((samples, m), np.nan)
         self.reconciled_u = np.full((samples, m), np.nan)
         self.adjustment = np.full((samples, m), np.nan)
+        self.test = np.full((samples, m), np.nan)
         self.redundancy = np.full((samples, m), np.nan)
+        self.control = np.full((samples, m), np.nan)
         self.chi_square = np.full(samples, np.nan)
         self.limit = np.full(samples, np.nan)
         self.inflation = np.full(samples, np.nan)
@@ -224,8 +233,11 @@ class _Results:
         self.covariance[at] = seen.curvature.covariance
         self.reconciled[at] = seen.value[:, :m]
         self.reconciled_u[at] = np.sqrt(seen.curvature.variance[:, :m])
-        self.adjustment[at] = seen.standardised[:, :m]
-        self.redundancy[at] = np.where(seen.testable, seen.loose.redundancy, 0.0)[:, :m]
+        self.adjustment[at] = seen.adjustment[:, :m]
+        if seen.loose.correlated is not None:
+            self.test[at] = seen.standardised[:, :m]
+        self.redundancy[at] = seen.redundancy[:, :m]
+        self.control[at] = np.where(seen.testable, seen.loose.redundancy, 0.0)[:, :m]
         self.chi_square[at] = seen.chi_square
         self.limit[at] = seen.limit
         self.inflation[at] = seen.curvature.inflation

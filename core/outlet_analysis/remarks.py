@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator, Sequence
 
 import numpy as np
 
-from core.arrays import BoolArray
-from core.errors import Fact, Note, Readings
-from core.outlet_analysis.account import listed
+from core.arrays import BoolArray, FloatArray
+from core.errors import Fact, Note, Readings, Subject
+from core.outlet_analysis.account import Account, listed
 from core.outlet_analysis.analysis_sums import COVERAGE, REMARKED, WHOLE, percent, sum_u
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.readings import BELOW
@@ -156,22 +156,34 @@ def _absent(found: Estimate, counted: Counted) -> Iterator[Note]:
 
 def _placement(found: Estimate) -> Iterator[Note]:
     """What several outlet streams are taken to hold."""
-    outlets, feeds = found.account.problem.outlet, len(found.account.problem.feed)
-    if len(outlets) < 2:
-        return
+    account = found.account
+    if len(account.outlet) > 1:
+        yield _placed(found, account.outlet, account.outlet_map)
+    if account.products:
+        around = (account.returned, *(() if account.purge is None else (account.purge,)))
+        yield _placed(found, (*around, *account.products), account.leaving_map)
+
+
+def _placed(found: Estimate, streams: Sequence[int], leaving: FloatArray) -> Note:
+    """What streams are taken to hold that share out what comes out of the reactor, or leaves."""
+    account = found.account
+    outlets = [account.streams[g] for g in streams]
     free = tuple(stream.subject for stream in outlets if stream.present is None)
     named = tuple(stream.subject for stream in outlets if stream.present is not None)
     facts: dict[str, Fact] = {}
     words = []
+    side = "outlet" if streams[0] in account.outlet else "product"
+    leave, leaves = ("leave", "leaves") if side == "outlet" else ("be", "is")
     if free:
         facts["free"] = Readings(free)
-        words.append("anything that the phase can carry may leave in {free}")
+        words.append(f"anything that the phase can carry may {leave} in {{free}}")
     if named:
         facts["named"] = Readings(named)
-        words.append("only what is named there leaves in {named}")
+        words.append(f"only what is named there {leaves} in {{named}}")
     detail = ", and ".join(words)
-    for q, stream in enumerate(outlets):
-        shares = _by_difference(found, feeds + q) if stream.present is None else []
+    for q, (g, stream) in enumerate(zip(streams, outlets, strict=True)):
+        by_difference = stream.present is None and g in (*account.outlet, *account.products)
+        shares = _by_difference(found, g, leaving) if by_difference else []
         if shares:
             facts[f"stream_{q}"], facts[f"shares_{q}"] = Readings((stream.subject,)), listed(shares)
             detail += (
@@ -179,19 +191,20 @@ def _placement(found: Estimate) -> Iterator[Note]:
                 f" {{stream_{q}}}: {{shares_{q}}}; state the phase of what cannot be there, or"
                 " complete the analysis"
             )
-    yield Note("outlet-placement", detail, subject=("outlet",), facts=facts)
+    return Note("outlet-placement", detail, subject=(side,), facts=facts)
 
 
-def _by_difference(found: Estimate, g: int) -> list[str]:
+def _by_difference(found: Estimate, g: int, leaving: FloatArray) -> list[str]:
     """Substances, with the share of all that leaves, in stream ``g`` and in no value of it."""
     account = found.account
     read: set[int] = set()
     for analysis in account.streams[g].analyses:
         read.update(*(component.weights for component in analysis.components))
-    flows, left = found.stream_flows(g), found.outlet_flows
-    elsewhere = (found.stream_forms(g) != account.outlet_map).any(axis=1)
+    flows, left = np.atleast_2d(found.stream_flows(g)), np.atleast_2d(found.z @ leaving.T)
+    forms = found.stream_forms(g)
+    carried = forms.any(axis=-1) & (forms != leaving).any(axis=-1)
     words = []
-    for i in np.flatnonzero(elsewhere & found.stream_forms(g).any(axis=1)).tolist():
+    for i in np.flatnonzero(np.atleast_2d(carried).any(axis=0)).tolist():
         there = np.isfinite(flows[:, i]) & (left[:, i] > 0)
         if i in read or not there.any():
             continue
@@ -201,25 +214,37 @@ def _by_difference(found: Estimate, g: int) -> list[str]:
     return words
 
 
+def _sides(account: Account) -> Iterator[tuple[Subject, str, FloatArray, Iterable[int]]]:
+    """Yield each side of the account, in words, its flows for scale, and its streams."""
+    problem = account.problem
+    feeds = range(len(problem.feed))
+    if problem.recycle is None:
+        yield ("feed",), "fed", account.feed_map, feeds
+    else:
+        yield ("fresh_feed",), "in the fresh feed", account.fresh_map, feeds
+        yield ("feed",), "fed", account.feed_map, account.inlet
+    if problem.outlet:
+        yield ("outlet",), "leaving", account.outlet_map, account.outlet
+    if problem.recycle is not None:
+        yield ("recycle",), "returned", account.returned_map, (account.returned,)
+        if account.purge is not None:
+            yield ("purge",), "purged", account.leaving_map, (account.purge,)
+        yield ("product",), "in the product", account.leaving_map, account.products
+
+
 def _below_zero(found: Estimate, counted: Counted) -> Iterator[Note]:
     """Flows below zero by more than twice their uncertainty, stream by stream or in the sum."""
     account = found.account
     names = account.problem.reactions.names
-    feeds = len(account.problem.feed)
-    every = account.stream_map[: len(account.streams) * len(names)]
-    if not (found.z @ every.T < 0).any():
+    if not (account.every_flow(found.z) < 0).any():
         return
-    sides = [(("feed",), "fed", account.feed_map, range(feeds))]
-    if account.problem.outlet:
-        streams = range(feeds, len(account.streams))
-        sides.append((("outlet",), "leaving", account.outlet_map, streams))
-    for side, way, forms, streams in sides:
+    for side, way, forms, streams in _sides(account):
         scale = np.abs(found.z @ forms.T).max(axis=-1, keepdims=True)
         parts = [
             (account.streams[g].subject, found.stream_forms(g), found.stream_flows(g))
             for g in streams
         ]
-        if len(parts) > 1:
+        if len(parts) > 1 and side != ("product",):
             parts.append((side, forms, found.z @ forms.T))
         said: set[int] = set()
         for subject, of, flows in parts:
@@ -306,9 +331,8 @@ def _sum_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
             continue
         weights = account.writer.weights(of.analysis)
         flows = found.stream_flows(of.stream)
-        seen = account.writer.sampled(
-            of.stream, weights * account.writer.own[of.stream], of.analysis
-        )
+        own = account.writer.own[of.stream]
+        seen = account.writer.sampled(of.stream, weights * own, of.analysis, weights)
         whole = np.nan_to_num(flows) @ seen
         marks &= whole > 0
         share = flows[:, unread] * weights[unread] / np.where(marks, whole, 1.0)[:, None]
@@ -340,9 +364,9 @@ def _meters(found: Estimate) -> Iterator[Note]:
     rows = slice(found.first, found.first + len(there))
     for meter in account.writer.by_pressure:
         design = meter.reading.design
+        flows = account.every_flow(found.z)
         amount, mass = (
-            np.atleast_1d(found.z @ (form @ account.stream_map))
-            for form in (meter.amount, meter.mass)
+            np.atleast_1d(flows @ form[: flows.shape[-1]]) for form in (meter.amount, meter.mass)
         )
         passing = there & (amount > 0) & (mass > 0)
         if design is None or not passing.any():
@@ -355,14 +379,13 @@ def _removal_notes(found: Estimate, counted: Counted) -> Iterator[Note]:
     """Removals whose residual is more than the stream holds of the substance."""
     account = found.account
     names = account.problem.reactions.names
-    count = len(names)
     of_streams = [(g, a) for g, stream in enumerate(account.streams) for a in stream.analyses]
     for g, analysis in of_streams:
         if not any(removal.residual for removal in analysis.removed):
             continue
         left = 1 - sum(removal.residual for removal in analysis.removed)
         gone = [removal.substance for removal in analysis.removed]
-        flows = found.z @ account.stream_map[g * count : (g + 1) * count].T
+        flows = account.stream_flows(g, found.z)
         own = account.writer.own[g]
         rest = flows @ own - flows[..., gone] @ own[gone]
         for removal in analysis.removed:

@@ -2,16 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
-from core.errors import Fault
+from core.arrays import BoolArray, FloatArray, IntArray
+from core.errors import Fault, Readings
 from core.outlet_analysis.account import Account
-from core.outlet_analysis.forms import Forms
-from core.outlet_analysis.gauss_newton import Fit, IntArray, covariance_at, least_squares
+from core.outlet_analysis.gauss_newton import (
+    Fit,
+    Solution,
+    covariance_at,
+    least_squares,
+)
 from core.outlet_analysis.observability import (
     equilibrated,
     open_directions,
@@ -21,7 +25,16 @@ from core.outlet_analysis.observability import (
     under_determined,
     without_columns,
 )
-from core.outlet_analysis.preparation import AGREEMENT, Block, Group, conflict, groups
+from core.outlet_analysis.preparation import (
+    AGREEMENT,
+    DEPENDENT,
+    Block,
+    Group,
+    conflict,
+    groups,
+    meeting_equations,
+    natural_size,
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -100,8 +113,12 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         )
         label = label.reshape(-1)
     forms = group.fit.forms.samples(first)
-    scaled = equilibrated(forms, group.start[first], active[first], group.natural[first])
+    scaled = equilibrated(forms, group.judged[first], active[first], group.natural[first])
     is_open = open_patterns(scaled)
+    if block.account.split >= 0 and is_open.any():
+        group = _brought_near(block, group, label, first, scaled, is_open)
+        scaled = equilibrated(forms, group.judged[first], active[first], group.natural[first])
+        is_open = open_patterns(scaled)
     determined = ~is_open[label]
     n = len(block.account.unknowns)
     told = _Held(np.empty((n, 0)), np.empty(0, dtype=np.intp))
@@ -117,7 +134,7 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         directions = open_directions(scaled[pattern])
         absent = told.absent
         if reported is not None and touched(reported, natural, directions).any():
-            absent = taken_as_absent(block.account, group.start[sample], natural, directions)
+            absent = taken_as_absent(block.account, group.judged[sample], natural, directions)
             if not len(absent):
                 yield group.rows[mine], _left_open(block, group, sample, directions)
                 continue
@@ -128,10 +145,58 @@ def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Itera
         at[:, open_.shape[1] :] = 0.0
         fit = _holding(group.fit.samples(mine), held, at)
         for outcome in _solved(block, group, mine, fit, _Held(open_ * natural[:, None], absent)):
-            if isinstance(outcome, Fitted) and len(absent):
+            if not len(absent):
+                yield outcome
+            elif isinstance(outcome, Fitted):
                 yield from _possible(block, group, outcome, directions)
             else:
-                yield outcome
+                # What was removed is there, or no account would be missing.
+                for row in outcome[0].tolist():
+                    at = int(np.flatnonzero(group.rows == row)[0])
+                    yield np.array([row]), _left_open(block, group, at, directions)
+
+
+def _brought_near(
+    block: Block,
+    group: Group,
+    label: IntArray,
+    first: IntArray,
+    scaled: FloatArray,
+    is_open: BoolArray,
+) -> Group:
+    """Bring samples that seem to leave something open to where their readings are met.
+
+    With a split among the unknowns slopes change from place to place, and it is
+    there that what is open must be judged. Where it seems open there too, so it may be for a poor
+    first guess: another one at which nothing is open takes its place.
+    """
+    account = block.account
+    start, judged = np.array(group.start), np.array(group.judged)
+    natural = np.array(group.natural)
+
+    def still_open(pattern: int, z: FloatArray, sizes: FloatArray) -> bool:
+        k = first[pattern : pattern + 1]
+        forms, active = group.fit.forms.samples(k), block.active[group.rows[k]]
+        return bool(open_patterns(equilibrated(forms, z[k], active, sizes[k]))[0])
+
+    for pattern in np.flatnonzero(is_open).tolist():
+        mine = np.flatnonzero(label == pattern)
+        held = open_directions(scaled[pattern]).T / group.natural[first[pattern]]
+        fit = _holding(group.fit.samples(mine), held, start[mine] @ held.T)
+        found = least_squares(fit, start[mine], natural[mine])
+        there = mine[found.converged]
+        start[there] = judged[there] = found.z[found.converged]
+        natural[there] = natural_size(account, start[there])
+        if not still_open(pattern, judged, natural):
+            continue
+        for other in group.others:
+            on_equations = meeting_equations(account, other)
+            sizes = natural_size(account, other)
+            if not still_open(pattern, on_equations, sizes):
+                start[mine], judged[mine] = other[mine], on_equations[mine]
+                natural[mine] = sizes[mine]
+                break
+    return replace(group, start=start, judged=judged, natural=natural)
 
 
 @dataclass(frozen=True, eq=False)
@@ -169,16 +234,24 @@ def _possible(
 def _left_open(block: Block, group: Group, sample: int, directions: FloatArray) -> Fault:
     """Say what a sample of a group leaves open, looked at where its readings are met."""
     one = slice(sample, sample + 1)
-    fit, start, natural = group.fit.samples(one), group.start[one], group.natural[one]
+    fit, start, natural = group.fit.samples(one), group.judged[one], group.natural[one]
     forms = directions.T / natural
     held = least_squares(_holding(fit, forms, start @ forms.T), start, natural)
-    return open_at(block, group.rows[sample], held.z if held.converged[0] else start, natural)
+    z = held.z if held.converged[0] else group.judged[one]
+    return open_at(block, group.rows[sample], z, natural)
 
 
 def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault:
     """Say what sample ``row`` of a block leaves open; ``z`` and ``natural`` are (1, n)."""
-    active = block.active[row]
-    scaled = equilibrated(block.forms.samples(slice(row, row + 1)), z, active[None], natural)[0]
+    active, forms = block.active[row], block.forms.samples(slice(row, row + 1))
+    scaled = equilibrated(forms, z, active[None], natural)[0]
+    if not _flowing(block.account, z[0]):
+        # What is open may be anything: as usual as can be, so that readings of it mean something.
+        directions = open_directions(scaled)
+        usual = ((block.nominal[row] - z[0]) / natural[0]) @ directions
+        moved = meeting_equations(block.account, z + natural * (directions @ usual))
+        if _flowing(block.account, moved[0]) and forms.inside(moved).all():
+            z, scaled = moved, equilibrated(forms, moved, active[None], natural)[0]
     subjects, bound = block.account.readings.subjects, block.bound[row]
     silent = np.flatnonzero(~active[: len(subjects)]).tolist()
     missing = tuple(subjects[k] for k in silent if not bound[k])
@@ -186,22 +259,38 @@ def open_at(block: Block, row: int, z: FloatArray, natural: FloatArray) -> Fault
     return under_determined(block.account, z[0], natural[0], scaled, missing, off_scale)
 
 
+def _flowing(account: Account, z: FloatArray) -> bool:
+    """Whether something flows in every stream, at ``z`` (n,)."""
+    totals = [
+        account.writer.own[g] @ account.stream_flows(g, z) for g in range(len(account.streams))
+    ]
+    return bool(min(totals) > 0)
+
+
+def still_open(account: Account, fitted: Fitted, active: BoolArray) -> BoolArray:
+    """Which samples leave something open where their fit came to rest, shape (len(rows),).
+
+    With a split among the unknowns slopes change from place to place, and
+    what is told at the first guess need not be told there. ``active`` says which readings
+    there are.
+    """
+    held = fitted.fit.measured.shape[1] - active.shape[1]
+    there = np.pad(active, ((0, 0), (0, held)), constant_values=True)
+    natural = natural_size(account, fitted.z)
+    return open_patterns(equilibrated(fitted.fit.forms, fitted.z, there, natural))
+
+
 def _holding(fit: Fit, held: FloatArray, at: FloatArray) -> Fit:
     """Add equations that keep the forms ``held`` (d, n) at the values ``at`` (N, d)."""
     d, forms = len(held), fit.forms
-    constants = forms.constants
     m, n = len(forms.numerators), len(at)
     return Fit(
-        Forms(
-            np.concatenate([constants, np.ones((*constants.shape[:-1], d))], axis=-1),
-            np.concatenate([forms.numerators, held]),
-            forms.bases,
-            np.concatenate([forms.exponents, np.zeros((d, forms.exponents.shape[1]))]),
-        ),
+        forms.beside(held),
         np.concatenate([fit.measured, at], axis=1),
         np.concatenate([fit.weight, np.zeros((n, d))], axis=1),
         np.concatenate([fit.stiff, np.arange(m, m + d)]),
         np.concatenate([fit.compliance, np.zeros((n, d))], axis=1),
+        None if fit.mixture is None else fit.mixture.beside(d),
     )
 
 
@@ -211,11 +300,20 @@ def _solved(
     start, natural, rows = group.start, group.natural, group.rows
     if not mine.all():
         start, natural, rows = start[mine], natural[mine], rows[mine]
+    whole = fit
+    fit = without_repeats(fit, start, natural)
     solution = least_squares(fit, start, natural)
+    if group.others and not solution.converged.all():
+        solution = _started_anew(fit, solution, natural, [of[mine] for of in group.others])
     good = solution.converged
     if not good.all():
         yield rows[~good], not_converged(block.account)
     agreed = good
+    if fit is not whole:
+        at_odds = good & _at_odds(whole, fit, solution.z)
+        for k in np.flatnonzero(at_odds).tolist():
+            yield rows[k : k + 1], _fully_correlated(block.account, whole, k)
+        agreed = good = good & ~at_odds
     if len(group.dependent):
         found = fit.forms.at(solution.z)
         slopes = fit.forms.jacobian(found)[:, group.dependent] * natural[:, None, :]
@@ -235,6 +333,80 @@ def _solved(
         yield fitted
     elif agreed.any():
         yield fitted.samples(agreed)
+
+
+def without_repeats(fit: Fit, z: FloatArray, natural: FloatArray) -> Fit:
+    """Leave out exact combinations of correlated readings that other exact ones imply.
+
+    Fractions of a whole sample whose errors cancel in the sum say, exactly,
+    that they add up to it.
+    """
+    if fit.mixture is None or not (fit.compliance[:, fit.mixture.linked] == 0).any():
+        return fit
+    exact, linked = fit.compliance == 0, fit.mixture.linked
+    slopes = fit.forms.jacobian(fit.forms.at(z))[:, fit.stiff] * natural[:, None, :]
+    square = (slopes * slopes).sum(axis=-1, keepdims=True)
+    counted = np.sqrt(fit.mixture.forward**2 @ square)
+    scaled = (fit.mixture.forward @ slopes) / np.where(counted > 0, counted, 1.0)
+    repeats = np.zeros_like(exact)
+    directions = np.zeros_like(scaled)
+    # What is stated as exact by itself goes before what follows from correlations.
+    for row in np.argsort(linked, kind="stable").tolist():
+        if not exact[:, row].any():
+            continue
+        along = directions @ scaled[:, row, :, None]
+        rest = scaled[:, row] - (directions * along).sum(axis=1)
+        left = np.sqrt((rest * rest).sum(axis=-1))
+        new = exact[:, row] & (left > DEPENDENT)
+        directions[:, row] = np.where(new[:, None], rest / np.where(new, left, 1.0)[:, None], 0.0)
+        repeats[:, row] = exact[:, row] & ~new & linked[row]
+    if not repeats.any():
+        return fit
+    return replace(fit, compliance=np.where(repeats, np.inf, fit.compliance))
+
+
+def _at_odds(whole: Fit, fit: Fit, z: FloatArray) -> BoolArray:
+    """In which samples the combinations left out of a fit do not hold in it after all, (N,)."""
+    left_out = np.isinf(fit.compliance) & (whole.compliance == 0)
+    gap = np.abs(fit.equations(fit.measured - fit.forms.at(z).value))
+    assert fit.mixture is not None
+    size = np.abs(fit.mixture.forward) @ np.abs(fit.measured[:, fit.stiff])[:, :, None]
+    return np.asarray((left_out & (gap > AGREEMENT * size[:, :, 0])).any(axis=1))
+
+
+def _fully_correlated(account: Account, fit: Fit, sample: int) -> Fault:
+    """Say which readings of a sample leave a combination without any error."""
+    mixture = fit.mixture
+    assert mixture is not None
+    exact = (fit.compliance[sample] == 0) & mixture.linked
+    # Combinations stand where readings do; those of the linked ones have no other readings.
+    part = np.abs(mixture.vectors[sample][:, exact]).max(axis=1)
+    named = fit.stiff[(part > 1e-6) & mixture.linked].tolist()
+    subjects = tuple(account.readings.subjects[row] for row in named)
+    return Fault(
+        "fully-correlated-readings",
+        subjects[0],
+        "the errors of {readings} are correlated so fully that a combination of these readings has"
+        " none, such as their sum; and the account has another value of that combination. Give"
+        " them a part of their own ('u' beside 'u_shared', a coefficient within -1 and 1), correct"
+        " a value, or leave one of them out",
+        {"readings": Readings(subjects)},
+    )
+
+
+def _started_anew(
+    fit: Fit, solution: Solution, natural: FloatArray, others: Sequence[FloatArray]
+) -> Solution:
+    """Start the samples that came to no rest from elsewhere, one place after the other."""
+    z, converged = np.array(solution.z), np.array(solution.converged)
+    for start in others:
+        rows = np.flatnonzero(~converged)
+        if not len(rows):
+            break
+        found = least_squares(fit.samples(rows), start[rows], natural[rows])
+        z[rows[found.converged]] = found.z[found.converged]
+        converged[rows] = found.converged
+    return Solution(z, converged)
 
 
 def not_converged(account: Account) -> Fault:

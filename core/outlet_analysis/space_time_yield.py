@@ -14,6 +14,7 @@ import numpy as np
 
 from core.errors import Fact, Note
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.monte_carlo import Draws
 from core.outlet_analysis.ratios import NEAR_ZERO, Uncertain, forms_of
 from core.streams.metered import Measurement
 
@@ -49,11 +50,12 @@ class SpaceTimeYields:
 
 
 def space_time_yields(
-    found: Estimate, products: tuple[int, ...], size: ReactorSize
+    found: Estimate, products: tuple[int, ...], size: ReactorSize, draws: Draws | None = None
 ) -> SpaceTimeYields:
     """Return what the account of a single sample makes of each product by the reactor's size.
 
     The uncertainties of account, size and time are independent of each other.
+    With ``draws`` size and time are drawn beside them.
     """
     account = found.account
     made = (account.outlet_map - account.feed_map)[list(products)]
@@ -62,7 +64,10 @@ def space_time_yields(
     per = float(np.prod([part.value for part in divisors]))
     share = float(np.sqrt(sum((part.u / part.value) ** 2 for part in divisors)))
     value = of.value / per
-    u = np.sqrt((of.u / per) ** 2 + (value * share) ** 2)
+    values = Uncertain(value, np.sqrt((of.u / per) ** 2 + (value * share) ** 2))
+    if draws is not None:
+        below = draws.beside(divisors)[:, None]
+        values = draws.quotient(value, np.array([per]), draws.z @ made.T, below)
     notes = [
         Note(
             "denominator-near-zero",
@@ -85,5 +90,5 @@ def space_time_yields(
             )
         )
     if notes:
-        value, u = np.full_like(value, np.nan), np.full_like(u, np.nan)
-    return SpaceTimeYields(size.basis, products, Uncertain(value, u), tuple(notes))
+        values = values.where(np.zeros(value.shape, dtype=bool))
+    return SpaceTimeYields(size.basis, products, values, tuple(notes))

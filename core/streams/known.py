@@ -44,7 +44,12 @@ def is_direct(stream: MeteredStream) -> bool:
         return all(f.substance is not None or f.kind == "volume" for f in stream.flows)
     if len(stream.analyses) > 1:
         return False
-    return stream.analyses[0].basis in CONCENTRATIONS and any(
+    (analysis,) = stream.analyses
+    if analysis.basis not in CONCENTRATIONS or analysis.removed or analysis.normalised:
+        return False
+    if any(list(component.weights.values()) != [1.0] for component in analysis.components):
+        return False
+    return any(
         f.substance is None and f.kind == "volume" and f.molar_volume is None for f in stream.flows
     )
 

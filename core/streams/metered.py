@@ -6,6 +6,7 @@ readings best is found by :mod:`core.outlet_analysis`.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
@@ -17,6 +18,9 @@ from core.streams.stream import StreamPhase
 Basis = Literal["mole", "mass", "volume", "concentration", "mass-concentration"]
 """What an analysis counts. ``volume`` is the mole basis for a gas, and for a liquid is refused
 where no volumes are known; the two concentrations are mol/m3 and kg/m3."""
+
+Instrument = str | Subject
+"""Whose error several readings share: an instrument by its name, or a reading that stands alone."""
 
 FlowKind = Literal["amount", "mass", "volume"]
 """mol/s, kg/s, or m3/s at the meter's own conditions."""
@@ -31,18 +35,31 @@ class Measurement:
     value : float
         The reading, or the limit where ``bound`` says so.
     u : float
-        Standard uncertainty; 0 means exact.
+        Standard uncertainty of the reading's own error, random from sample to
+        sample.
     subject : Subject
         Names the reading.
     bound : "below", "above" or None
         ``below``: a non-detect, the value lies between 0 and the limit.
         ``above``: off scale, the value lies above the limit.
+    shared : tuple of (Instrument, float)
+        Parts of the error that are constant over a series and common to all
+        readings that name the same instrument: how far one standard deviation
+        of the instrument's error moves this reading, with its sign.
     """
 
     value: float
     u: float
     subject: Subject
     bound: Literal["below", "above"] | None = None
+    shared: tuple[tuple[Instrument, float], ...] = ()
+
+    @property
+    def total_u(self) -> float:
+        """Standard uncertainty, own and shared parts together; 0 means exact."""
+        if not self.shared:
+            return self.u
+        return math.hypot(self.u, *(part for _, part in self.shared))
 
 
 @dataclass(frozen=True)

@@ -9,14 +9,18 @@ covariance, chi-square, measurement tests and, where they fail, serial eliminati
 
 from __future__ import annotations
 
+import subprocess
+import sys
 from collections.abc import Callable
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 from scipy.optimize import least_squares
 
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.monte_carlo import Sampling, monte_carlo
 from core.outlet_analysis.readings import Series
 from core.outlet_analysis.reconciliation import estimate
 from tests.benchmark._interleave import medians
@@ -123,7 +127,35 @@ def script(base: AccountProblem, values: np.ndarray, u: np.ndarray) -> tuple[Res
     return residuals, slopes
 
 
-def run() -> list[tuple[str, float, float]]:
+LONG = 100_000
+MEMORY = """
+import resource
+from tests.benchmark import reconciliation as this
+from core.outlet_analysis.reconciliation import estimates
+series = this.noisy(this.problem(), this.LONG)
+above = rows = 0
+for part in estimates(series):
+    above += int((part.chi_square > part.limit).sum())
+    rows += len(part.z)
+print(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 100 * above / rows)
+"""
+
+
+def long_series() -> tuple[float, float]:
+    """Largest memory of a process that works through a long series block by block, MiB, and the
+    per cent of its samples above the 95 % limit of chi-square."""
+    made = subprocess.run(
+        [sys.executable, "-c", MEMORY],
+        cwd=Path(__file__).parents[2],
+        capture_output=True,
+        text=True,
+        check=True,
+    )
+    memory, above = map(float, made.stdout.split())
+    return memory, above
+
+
+def run() -> list[tuple[str, float, float] | tuple[str, float, float, str]]:
     base = problem()
     table = estimate(base).readings
     series = noisy(base, SAMPLES)
@@ -160,17 +192,27 @@ def run() -> list[tuple[str, float, float]]:
     def one_with_results() -> None:
         conversion_results(estimate(base))
 
+    found = estimate(base)
+
+    def draws() -> None:
+        monte_carlo(found, Sampling(10_000, 1))
+
     by_differences, in_series = medians(differences, whole_series, times=7)
     by_design, in_series_too = medians(differences_from_design, whole_series, times=7)
     by_slopes, in_series_again = medians(written_out, whole_series, times=7)
     by_differences_one, single = medians(differences, one, times=7)
     by_differences_all, everything = medians(differences, one_with_results, times=7)
+    by_differences_once, drawn = medians(differences, draws, times=5)
     each = len(few)
+    memory, above = long_series()
     return [
         ("series, to trf by differences", by_differences / each * SAMPLES / in_series, 70.0),
         ("series, to trf from the design point", by_design / each * SAMPLES / in_series_too, 40.0),
         ("series, to lm with Jacobian", by_slopes / each * SAMPLES / in_series_again, 14.0),
         ("one sample, to trf by differences", by_differences_one / each / single, 1.5),
         ("one with closures, to trf by differences", by_differences_all / each / everything, 0.8),
+        ("10,000 draws, in fits by trf", drawn / (by_differences_once / each), 60.0, "max"),
         ("series, thousand samples a second", SAMPLES / in_series / 1000, 30.0),
+        ("MiB of a process, 100,000 samples", memory, 200.0, "max"),
+        ("5 % above the 95 % limit, off by %", abs(above - 5), 1.0, "max"),
     ]

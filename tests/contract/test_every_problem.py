@@ -13,6 +13,7 @@ from schemas.contract import OPERATIONS
 from service.statuses import STATUSES
 from tests.support import SHIFT, assert_refused, changed, post
 
+CO, CO2, H2 = (f"/outlet/analysis/values/{name}" for name in ("CO", "CO2", "H2"))
 TABLE, CONVERSION, VOLUME = "stoichiometric-table", "conversion", "volume"
 EQUILIBRIUM = "equilibrium"
 
@@ -385,6 +386,72 @@ case(
         },
     ),
     "/outlet",
+)
+case(
+    "unknown-reading",
+    conversion(
+        correlations=[{"readings": [CO, "/outlet/analysis/values/CO3"], "coefficient": 0.5}]
+    ),
+    "/correlations/0/readings/1",
+)
+case(
+    "correlation-not-usable",
+    conversion(correlations=[{"readings": [CO, CO], "coefficient": 0.5}]),
+    "/correlations/0",
+)
+case(
+    "correlations-impossible",
+    conversion(
+        correlations=[
+            {"readings": [CO, CO2], "coefficient": 0.9},
+            {"readings": [CO2, H2], "coefficient": 0.9},
+            {"readings": [CO, H2], "coefficient": -0.9},
+        ]
+    ),
+    "/correlations/2",
+)
+case(
+    "fully-correlated-readings",
+    conversion(
+        feed={
+            "phase": "gas",
+            "flow": "100 kmol/h",
+            "analysis": {
+                "basis": "mole",
+                "values": {
+                    "CO": {"value": 40, "unit": "%", "u": 0.2},
+                    "H2O": {"value": 60.5, "unit": "%", "u": 0.2},
+                },
+            },
+        },
+        outlet__analysis__values={"CO": "20 %"},
+        correlations=[
+            {
+                "readings": ["/feed/analysis/values/CO", "/feed/analysis/values/H2O"],
+                "coefficient": -1,
+            }
+        ],
+    ),
+    "/feed/analysis/values/CO",
+)
+case(
+    "too-few-draws",
+    conversion(uncertainty={"method": "monte-carlo", "draws": 500, "coverage": 0.99}),
+    "/uncertainty/draws",
+)
+case(
+    "draws-without-account",
+    conversion(
+        uncertainty={"method": "monte-carlo", "draws": 400},
+        feed={
+            "phase": "gas",
+            "flow": {"value": 100, "unit": "kmol/h", "u": 60},
+            "analysis": {"basis": "mole", "values": {"CO": "40 %"}, "balance": "H2O"},
+        },
+        outlet__analysis__values={"CO": "5.39 %"},
+        outlet__analysis__removed=[],
+    ),
+    "/uncertainty",
 )
 case(
     "exact-readings-conflict",

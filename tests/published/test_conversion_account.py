@@ -6,6 +6,7 @@ Sources stand beside each check, with how the value is known:
   Processes, 3rd ed., Wiley, 2000.
 * [DueckerWest1959] W. W. Duecker, J. R. West (eds.), The Manufacture of Sulfuric Acid, ACS
   Monograph 144, Reinhold, 1959.
+* [GUM2008] JCGM 100:2008, Guide to the expression of uncertainty in measurement, annex H.
 * [HimmelblauRiggs2004] D. M. Himmelblau, J. B. Riggs, Basic Principles and Calculations in
   Chemical Engineering, 7th ed., Prentice Hall, 2004.
 * [NarasimhanJordache2000] S. Narasimhan, C. Jordache, Data Reconciliation and Gross Error
@@ -339,9 +340,8 @@ def test_nitrobenzene_hydrogenation_by_weight_of_the_organic_phase() -> None:
 # Linear reconciliation and critical values: the same solver on forms without denominators.
 
 
-def reconcile_flows(rows: list[list[float]], measured: list[float]) -> tuple[np.ndarray, Fit]:
-    """Flows F1 and F2 of the network as unknowns, variances 1."""
-    numerators = np.array(rows)
+def fitted(numerators: np.ndarray, measured: np.ndarray) -> tuple[np.ndarray, Fit]:
+    """Two unknowns of linear readings, variances 1."""
     m, n = numerators.shape
     fit = Fit(
         Forms(np.ones(m), numerators, np.empty((0, n)), np.empty((m, 0))),
@@ -352,7 +352,14 @@ def reconcile_flows(rows: list[list[float]], measured: list[float]) -> tuple[np.
     )
     solution = least_squares(fit, np.array([[1.0, 1.0]]), np.ones((1, 2)))
     assert solution.converged.all()
-    return numerators @ solution.z[0], fit
+    return solution.z[0], fit
+
+
+def reconcile_flows(rows: list[list[float]], measured: list[float]) -> tuple[np.ndarray, Fit]:
+    """The flows of the network, of which F1 and F2 are the unknowns, reconciled."""
+    numerators = np.array(rows)
+    unknowns, fit = fitted(numerators, np.array(measured))
+    return numerators @ unknowns, fit
 
 
 def test_exchanger_with_bypass_six_flows_measured() -> None:
@@ -371,6 +378,28 @@ def test_exchanger_with_bypass_two_flows_unmeasured() -> None:
     rows = [[1, 0], [0, 1], [1, -1], [1, 0]]
     reconciled, _ = reconcile_flows(rows, [101.91, 64.45, 36.44, 98.88])
     assert_allclose(reconciled, [100.49, 64.25, 36.24, 100.49], atol=0.006)
+
+
+def test_thermometer_calibration_line() -> None:
+    # [GUM2008] H.3, from memory: y1 + y2 (t - 20) through eleven corrections of one unknown
+    # variance; without their covariance the correction at 30 would have u = 0.0073.
+    t = np.array(
+        [21.521, 22.012, 22.512, 23.003, 23.507, 23.999, 24.513, 25.002, 25.503, 26.010, 26.511]
+    )
+    b = np.array(
+        [-0.171, -0.169, -0.166, -0.159, -0.164, -0.165, -0.156, -0.157, -0.159, -0.161, -0.160]
+    )
+    (y1, y2), fit = fitted(np.column_stack([np.ones(11), t - 20]), b)
+    at = curvature(fit, np.array([[y1, y2]]), np.ones((1, 2)))
+    s = float(np.sqrt((at.residual[0] ** 2).sum() / 9))
+    covariance = s**2 * at.covariance[0]
+    u1, u2 = np.sqrt(np.diag(covariance))
+    assert_allclose([y1, u1, s], [-0.1712, 0.0029, 0.0035], atol=6e-5)
+    assert_allclose([y2, u2], [0.00218, 0.00067], atol=6e-6)
+    assert_allclose(covariance[0, 1] / (u1 * u2), -0.930, atol=6e-4)
+    at_30 = np.array([1.0, 10.0])
+    assert_allclose(at_30 @ [y1, y2], -0.1494, atol=6e-5)
+    assert_allclose(np.sqrt(at_30 @ covariance @ at_30), 0.0041, atol=6e-5)
 
 
 def test_critical_values() -> None:

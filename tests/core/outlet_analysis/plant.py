@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
-from core.outlet_analysis.account import AccountProblem
+from core.outlet_analysis.account import AccountProblem, Recycle
 from core.reactions.build import ReactionInput, build_reaction_set
 from core.reactions.reaction_set import ReactionSet
 from core.streams.metered import (
@@ -142,6 +143,24 @@ def account(
     feeds = (feed,) if isinstance(feed, MeteredStream) else tuple(feed)
     outlets = (outlet,) if isinstance(outlet, MeteredStream) else tuple(outlet)
     return AccountProblem(reactions, reactions.index(key), feeds, outlets, **more)
+
+
+def with_streams(
+    problem: AccountProblem, change: Callable[[int, MeteredStream], MeteredStream]
+) -> AccountProblem:
+    """The problem with each of its streams changed, which are counted as the account does."""
+    streams = [change(g, stream) for g, stream in enumerate(problem.streams)]
+    feeds, outlets = len(problem.feed), len(problem.outlet)
+    recycle, rest = problem.recycle, streams[feeds + outlets :]
+    if recycle is not None:
+        purge = rest.pop(2) if recycle.purge is not None else None
+        recycle = Recycle(rest[0], rest[1], purge, tuple(rest[2:]))
+    return replace(
+        problem,
+        feed=tuple(streams[:feeds]),
+        outlet=tuple(streams[feeds : feeds + outlets]),
+        recycle=recycle,
+    )
 
 
 SHIFT_FEED = {"CO": 120.0, "H2O": 360.0, "CO2": 60.0, "H2": 210.0, "N2": 90.0, "CH4": 10.0}

@@ -10,7 +10,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from numpy.testing import assert_allclose
-from uncertainties import correlated_values
+from uncertainties import correlated_values, ufloat
 
 from core.errors import Refused
 from core.outlet_analysis.account import AccountProblem
@@ -102,6 +102,97 @@ def test_every_u_against_the_uncertainties_package(first: float, second: float, 
                 continue
             assert_allclose(shown.value[place], ratio.n, rtol=1e-9, atol=1e-12)
             assert_allclose(shown.u[place], ratio.s, rtol=1e-6, atol=1e-12)
+
+
+def single(
+    equation: str, key: str, feed: dict[str, Any], outlet: dict[str, Any]
+) -> tuple[float, float]:
+    """Conversion and its u of one gas reaction; ``feed`` and ``outlet`` as of ``stream_of``."""
+    names = [*feed["analysis"], *([feed["balance"]] if "balance" in feed else [])]
+    reactions = reactions_of({"r1": equation}, names)
+
+    def stream(side: str, analysis: dict[str, Any], **more: Any) -> Any:
+        flow = {"total": more.pop("total")} if "total" in more else {}
+        return stream_of(
+            reactions, side, analysis=analysis_of(reactions, side, analysis, **more), **flow
+        )
+
+    problem = account(reactions, key, stream("feed", **feed), stream("outlet", **outlet))
+    found, results = answer(problem)
+    assert found.degrees_of_freedom == 0
+    return float(results.conversion.value), float(results.conversion.u)
+
+
+@pytest.mark.parametrize("y", [0.004, 0.05, 0.12])
+def test_u_of_exactly_determined_accounts_against_their_formulas(y: float) -> None:
+    # Written by hand with the uncertainties package; nothing of the estimation is in them.
+    y0, of_y = (0.15, 0.002), (y, 0.01 * y + 2e-4)
+    before, after = ufloat(*y0), ufloat(*of_y)
+    tie0, tie = (0.25, 0.003), (0.31, 0.004)
+    cases = [
+        # Tie substance, normalised values.
+        (
+            single(
+                "C2H2 + 2 H2 -> C2H6",
+                "C2H2",
+                {"analysis": {"C2H2": y0, "CH4": tie0}, "balance": "H2"},
+                {"analysis": {"C2H2": of_y, "CH4": tie}, "normalised": True},
+            ),
+            1 - after / before * ufloat(*tie0) / ufloat(*tie),
+        ),
+        # Known change of moles, delta = -1.
+        (
+            single(
+                "C2H4 + H2 -> C2H6",
+                "C2H4",
+                {"analysis": {"C2H4": y0}, "balance": "H2"},
+                {"analysis": {"C2H4": of_y}},
+            ),
+            (before - after) / (before * (1 - after)),
+        ),
+        # Known change of moles, delta = +1.
+        (
+            single(
+                "2 NH3 -> N2 + 3 H2",
+                "NH3",
+                {"analysis": {"NH3": y0}, "balance": "CH4"},
+                {"analysis": {"NH3": of_y}},
+            ),
+            (before - after) / (before * (1 + after)),
+        ),
+        # A product read.
+        (
+            single(
+                "C2H6 -> C2H4 + H2",
+                "C2H6",
+                {"analysis": {"C2H6": y0}, "balance": "N2"},
+                {"analysis": {"C2H4": of_y}},
+            ),
+            after / (1 - after) / before,
+        ),
+        # Product removed before the analyser.
+        (
+            single(
+                "2 SO2 + O2 -> 2 SO3",
+                "SO2",
+                {"analysis": {"SO2": y0, "O2": (0.11, 0.0)}, "balance": "N2"},
+                {"analysis": {"SO2": of_y}, "removed": ["SO3"]},
+            ),
+            (before - after) / (before * (1 - 1.5 * after)),
+        ),
+        # Flows of both sides metered, values normalised: the number of moles tells.
+        (
+            single(
+                "C2H6 -> C2H4 + H2",
+                "C2H6",
+                {"analysis": {"C2H6": y0}, "balance": "N2", "total": (50.0, 0.6)},
+                {"analysis": {}, "total": (54.0, 0.3)},
+            ),
+            (ufloat(54.0, 0.3) / ufloat(50.0, 0.6) - 1) / before,
+        ),
+    ]
+    for (value, u), expected in cases:
+        assert_allclose([value, u], [expected.n, expected.s], rtol=1e-9)
 
 
 def test_u_against_a_seeded_monte_carlo() -> None:

@@ -3,124 +3,40 @@
 from __future__ import annotations
 
 from dataclasses import replace
-from typing import Any
 
 import numpy as np
 import pytest
 from numpy.testing import assert_allclose
-from scipy.optimize import least_squares
 
-from core.errors import Refused
-from core.outlet_analysis.account import AccountProblem, build_account
-from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.account import build_account
 from core.outlet_analysis.preparation import prepare
 from core.outlet_analysis.readings import PRESSURE, SCALE, TEMPERATURE, VOLUME, Series
 from core.outlet_analysis.reconciliation import estimate
-from tests.core.outlet_analysis.random_accounts import State, predicted, random_problem
-
-SEED = 20260201
-
-
-def with_noise(
-    problem: AccountProblem, state: State, rng: np.random.Generator, samples: int
-) -> AccountProblem:
-    truth = predicted(problem, state)
-    series = {}
-    for subject, value in truth.items():
-        u = np.full(samples, abs(value or 0.1) * rng.uniform(0.002, 0.02))
-        series[subject] = Series(value + u * rng.standard_normal(samples), u)
-    return replace(problem, series=series)
+from tests.core.outlet_analysis.definitions import slopes_of
+from tests.core.outlet_analysis.full_runs import SEED, minima
+from tests.core.outlet_analysis.random_accounts import (
+    per_mole_fed,
+    predicted,
+    purged_alone,
+    random_problem,
+    with_noise,
+)
 
 
-def as_state(found: Estimate, z: np.ndarray) -> State:
-    """The unknowns of an estimate as a state, by their kind."""
-    problem = found.account.problem
-    feeds, count = len(problem.feed), len(problem.reactions.substances)
-    state = State(
-        [np.zeros(count) for _ in range(feeds)],
-        np.zeros(len(problem.reactions.nu)),
-        [1.0] * feeds,
-        [[1.0] * 3 for _ in range(feeds + 1)],
-        [300.0] * (feeds + 1),
-        [1e5] * (feeds + 1),
-    )
-    for unknown, value in zip(found.account.unknowns, z, strict=True):
-        if unknown.kind == "flow":
-            state.feed[unknown.stream][unknown.index] = value
-        elif unknown.kind == "extent":
-            state.extents[unknown.index] = value
-        elif unknown.kind == "scale":
-            state.scales[unknown.stream][unknown.index] = value
-        else:
-            {
-                "volume": state.volumes,
-                "temperature": state.temperatures,
-                "pressure": state.pressures,
-            }[unknown.kind][unknown.stream] = value
-    return state
-
-
-def problems(count: int, several: bool) -> Any:
-    rng = np.random.default_rng(SEED)
-    made = 0
-    while made < count:
-        problem, state = random_problem(rng, several=several)
-        try:
-            found = estimate(with_noise(problem, state, rng, 1))
-        except Refused:
-            continue
-        if found.failed:
-            assert {fault.code for fault in found.failed.values()} == {"under-determined"}
-            continue
-        if found.absent.any():  # an assumption, and no minimum over all unknowns
-            continue
-        made += 1
-        yield found, state
-
-
-@pytest.mark.parametrize(("count", "several"), [(200, False), (60, True)])
-def test_same_minimum_as_a_general_solver_on_random_accounts(count: int, several: bool) -> None:
-    largest = largest_gradient = 0.0
-    redundant = 0
-    for found, _ in problems(count, several):
-        account = found.account
-        readings, z = account.readings, found.z[0]
-        measured, u = readings.measured[0], readings.u[0]
-
-        def residuals(z: np.ndarray, found: Estimate = found) -> np.ndarray:
-            made = predicted(found.account.problem, as_state(found, z))
-            subjects = found.account.readings.subjects
-            values = np.array([made[subject] for subject in subjects])
-            return (values - found.account.readings.measured[0]) / found.account.readings.u[0]
-
-        # The forms say the same as the definitions.
-        block = prepare(account, slice(0, 1))
-        assert_allclose(
-            residuals(z) * u + measured,
-            block.forms.at(found.z).value[0, :-1],
-            rtol=1e-12,
-            atol=1e-14,
-        )
-        size = np.sqrt(np.diag(found.covariance[0]))
-        # In units of the uncertainties and near 1, so that difference steps are well sized.
-        other = least_squares(
-            lambda t: residuals(z + size * (t - 1)),  # noqa: B023 - called at once
-            np.full(len(z), 1.1),
-            jac="3-point",
-            xtol=1e-15,
-            ftol=1e-15,
-            gtol=1e-15,
-        )
-        largest = max(largest, float(np.max(np.abs(other.x - 1))))
-        slopes = block.forms.jacobian(block.forms.at(found.z))[0, :-1] / u[:, None]
-        gradient = slopes.T @ residuals(z) * size
-        largest_gradient = max(largest_gradient, float(np.abs(gradient).max()))
-        assert_allclose(found.chi_square[0], 2 * other.cost, rtol=1e-6, atol=1e-8)
-        redundant += int(found.degrees_of_freedom[0] > 0)
-    assert largest <= 1e-6
-    assert largest_gradient <= 1e-6
-    # The set tries reconciliation, not only solving.
-    assert redundant > 0.75 * count
+def test_same_minimum_as_a_general_solver_on_random_accounts() -> None:
+    of = minima(120)
+    # Every feature is among them.
+    assert min(of.recycles, of.repeated, of.by_pressure, of.correlated) > 10
+    # 20 accounts with a nearly exact reading are beyond what a general solver can tell, at most.
+    assert of.compared > 80
+    assert of.redundant > 70
+    assert of.difference <= 1e-6
+    assert not of.unwarned
+    assert of.gradient <= 1e-7
+    # The forms say the same as the definitions.
+    assert of.form <= 1e-12
+    assert set(of.refused) <= {"under-determined", "not-converged"}
+    assert of.refused["not-converged"] <= 2
 
 
 def test_truth_without_noise_is_found_exactly() -> None:
@@ -129,38 +45,43 @@ def test_truth_without_noise_is_found_exactly() -> None:
     while checked < 60:
         problem, state = random_problem(rng)
         truth = predicted(problem, state)
-        series = {s: Series(np.array([v]), np.array([abs(v) * 0.01])) for s, v in truth.items()}
+        series = {
+            s: Series(np.array([v]), np.array([abs(v or 0.1) * 0.01])) for s, v in truth.items()
+        }
+        if not series:
+            continue
         found = estimate(replace(problem, series=series))
         if found.failed or found.absent.any():
             continue
         checked += 1
-        assert_allclose(found.feed_flows[0], sum(state.feed), rtol=1e-8, atol=1e-9)
+        if found.per_mole_of_key[0]:
+            state = per_mole_fed(state, problem.key)
+        assert_allclose(found.feed_flows[0], state.inlet, rtol=1e-8, atol=1e-9)
         assert_allclose(found.extents[0], state.extents, rtol=1e-7, atol=1e-9)
         assert found.chi_square[0] < 1e-12
 
 
-def test_jacobian_against_differences() -> None:
+def test_slopes_against_those_of_the_definitions() -> None:
     rng = np.random.default_rng(SEED + 2)
     kinds = set()
-    for _ in range(40):
+    for _ in range(100):
         problem, state = random_problem(rng)
-        account = build_account(with_noise(problem, state, rng, 1))
+        if purged_alone(problem):
+            # What is purged follows from the split there, whatever the unknowns are.
+            continue
+        account = build_account(with_noise(problem, state, rng, 1, plain=True))
         kinds |= {quantity for _, quantity in account.readings.used}
         block = prepare(account, slice(0, 1))
-        z = rng.uniform(0.5, 2.0, (1, len(account.unknowns)))
-        z[:, account.of_extent] *= 0.02
-        found = block.forms.at(z)
+        z = rng.uniform(0.5, 2.0, len(account.unknowns))
+        z[account.of_extent] *= 0.02
+        found = block.forms.at(z[None])
         if not found.inside.all():
             continue
-        slopes = block.forms.jacobian(found)[0]
-        for k in range(z.shape[1]):
-            step = np.zeros_like(z)
-            step[0, k] = 1e-5 * z[0, k]
-            up, down = block.forms.at(z + step).value, block.forms.at(z - step).value
-            difference = (up - down)[0] / (2 * step[0, k])
-            scale = np.abs(slopes[:, k]) + np.abs(found.value[0]) / z[0, k]
-            assert np.all(np.abs(difference - slopes[:, k]) <= 1e-8 * scale)
-    assert kinds == {VOLUME, TEMPERATURE, PRESSURE, SCALE}
+        slopes = block.forms.jacobian(found)[0, : len(account.readings.subjects)]
+        expected = slopes_of(problem, account.unknowns, z, account.readings.subjects)
+        scale = np.abs(expected) + np.abs(found.value[0, : len(slopes), None] / z)
+        assert np.all(np.abs(slopes - expected) <= 1e-11 * scale)
+    assert kinds >= {VOLUME, TEMPERATURE, PRESSURE, SCALE, SCALE + 1}
 
 
 @pytest.mark.parametrize("seed", [5, 6])
@@ -168,7 +89,7 @@ def test_chi_square_is_distributed_as_it_should(seed: int) -> None:
     rng = np.random.default_rng(seed)
     while True:
         problem, state = random_problem(rng)
-        found = estimate(with_noise(problem, state, rng, 2000))
+        found = estimate(with_noise(problem, state, rng, 2000, plain=True))
         if not (found.failed or found.absent.any()) and found.degrees_of_freedom[0] >= 3:
             break
     freedom = found.degrees_of_freedom[0]
@@ -182,9 +103,18 @@ def test_chi_square_is_distributed_as_it_should(seed: int) -> None:
     assert_allclose(pulls[:, seen].std(axis=0), 1.0, atol=0.07)
     assert_allclose(pulls[:, seen].mean(axis=0), 0.0, atol=0.1)
     # So is the error of every unknown over its uncertainty.
-    truth = np.concatenate([sum(state.feed), state.extents])
+    truth = np.concatenate([state.inlet, state.extents])
     forms = np.concatenate([found.account.feed_map, found.account.extent_map])
     error = found.z @ forms.T - truth
     u = found.u_of(forms)
     known = u[0] > 0
     assert_allclose((error[:, known] / u[:, known]).std(axis=0), 1.0, atol=0.07)
+
+
+@pytest.mark.parametrize("seed", [475, 955, 1796])
+def test_what_rounding_leaves_of_a_variance_is_no_certainty(seed: int) -> None:
+    # Random accounts whose unknowns are told apart by nearly exact readings alone: of a variance
+    # that came out below zero a standard uncertainty of 0 was made.
+    rng = np.random.default_rng(seed)
+    problem, state = random_problem(rng)
+    assert estimate(with_noise(problem, state, rng, 1)).failed

@@ -15,7 +15,6 @@ from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.readings import BELOW, Series
 from core.outlet_analysis.reconciliation import estimate, estimates
-from core.streams.metered import Measurement
 from tests.core.outlet_analysis.plant import (
     account,
     analysis_of,
@@ -23,54 +22,7 @@ from tests.core.outlet_analysis.plant import (
     shift_problem,
     stream_of,
 )
-
-
-def measurements(problem: AccountProblem) -> list[Measurement]:
-    found = []
-    for stream in (*problem.feed, *problem.outlet):
-        found += [reading.measurement for reading in stream.flows]
-        for analysis in stream.analyses:
-            found += [component.measurement for component in analysis.components]
-    return found
-
-
-def noisy_series(problem: AccountProblem, samples: int, seed: int = 3) -> dict[Any, Series]:
-    rng = np.random.default_rng(seed)
-    return {
-        reading.subject: Series(
-            reading.value + reading.u * rng.standard_normal(samples), np.full(samples, reading.u)
-        )
-        for reading in measurements(problem)
-    }
-
-
-def one(problem: AccountProblem, k: int) -> AccountProblem:
-    """Sample ``k`` of a series as a problem of single readings."""
-
-    def single(reading: Measurement) -> Measurement:
-        of = problem.series.get(reading.subject)
-        if of is None:
-            return reading
-        bound: Any = None if of.bound is None or not of.bound[k] else "below"
-        return Measurement(float(of.value[k]), float(of.u[k]), reading.subject, bound)
-
-    def stream(of: Any) -> Any:
-        flows = tuple(replace(f, measurement=single(f.measurement)) for f in of.flows)
-        analyses = []
-        for analysis in of.analyses:
-            components = tuple(
-                replace(c, measurement=single(c.measurement)) for c in analysis.components
-            )
-            analyses.append(replace(analysis, components=components))
-        return replace(of, flows=flows, analyses=tuple(analyses))
-
-    return replace(
-        problem,
-        feed=tuple(stream(s) for s in problem.feed),
-        outlet=tuple(stream(s) for s in problem.outlet),
-        series={},
-    )
-
+from tests.core.outlet_analysis.random_accounts import noisy, one_sample
 
 CO_OUT = ("outlet", "analysis", "values", "CO")
 N2_OUT = ("outlet", "analysis", "values", "N2")
@@ -79,7 +31,7 @@ N2_OUT = ("outlet", "analysis", "values", "N2")
 def gappy() -> AccountProblem:
     """Missing readings, limits, an exact one, a gross error, and a sample without flows."""
     problem = shift_problem()
-    series = noisy_series(problem, 40)
+    series = noisy(problem, 40)
     series[CO_OUT].value[[3, 7]] = np.nan
     series[N2_OUT].value[[7, 9]] = np.nan
     series[N2_OUT].value[20] *= 1.2
@@ -104,11 +56,11 @@ def test_every_sample_equals_its_own_single_estimate() -> None:
     for k in range(40):
         if k in found.failed:
             with pytest.raises(Refused) as caught:
-                estimate(one(problem, k))
+                estimate(one_sample(problem, k))
             assert caught.value.faults[0].code == found.failed[k].code == "under-determined"
             assert np.isnan(results.conversion.value[k])
             continue
-        single = estimate(one(problem, k))
+        single = estimate(one_sample(problem, k))
         assert_allclose(found.z[k], single.z, rtol=1e-10, atol=1e-12)
         assert_allclose(found.covariance[k], single.covariance, rtol=1e-7, atol=1e-12)
         assert_allclose(found.chi_square[k], single.chi_square, rtol=1e-8, atol=1e-12)
@@ -184,7 +136,7 @@ def test_a_sample_without_any_flow_is_told_per_mole_of_key() -> None:
 
 def test_a_sample_that_cannot_be_fitted_leaves_the_others_alone() -> None:
     problem = shift_problem()
-    series = noisy_series(problem, 30)
+    series = noisy(problem, 30)
     whole = estimate(replace(problem, series=series))
     for subject, of in series.items():
         of.value[4] = 0.0  # nothing flows, and yet an analysis
@@ -199,7 +151,7 @@ def test_a_sample_that_cannot_be_fitted_leaves_the_others_alone() -> None:
 
 def test_an_exact_reading_that_varies_is_met_in_every_sample() -> None:
     problem = shift_problem()
-    series = noisy_series(problem, 20)
+    series = noisy(problem, 20)
     exact = series[CO_OUT].value.copy()
     series[CO_OUT] = Series(exact, np.zeros(20))
     found = estimate(replace(problem, series=series))
@@ -210,9 +162,7 @@ def test_an_exact_reading_that_varies_is_met_in_every_sample() -> None:
 
 def test_an_empty_series() -> None:
     problem = shift_problem()
-    series = {
-        reading.subject: Series(np.empty(0), np.empty(0)) for reading in measurements(problem)
-    }
+    series = {subject: Series(np.empty(0), np.empty(0)) for subject in noisy(problem, 0)}
     found = estimate(replace(problem, series=series))
     assert found.z.shape[0] == 0
     assert conversion_results(found).conversion.value.shape == (0,)
@@ -249,7 +199,7 @@ def test_a_gas_meter_whose_conditions_vary_over_more_samples_than_a_block(
 def test_intervals_cover_what_they_say() -> None:
     # 10,000 seeded samples: binomial spread 0.2 %.
     problem = shift_problem()
-    found = estimate(replace(problem, series=noisy_series(problem, 10_000, seed=20260201)))
+    found = estimate(replace(problem, series=noisy(problem, 10_000, seed=20260201)))
     results = conversion_results(found, closures=False)
     truth = conversion_results(estimate(problem)).conversion.value
     covered = np.abs(results.conversion.value - truth) <= 1.959964 * results.conversion.u
@@ -283,8 +233,8 @@ def test_liquid_volume_of_a_series_where_the_readings_tell_it() -> None:
         account(reactions, "C2H4O", feed, outlet, series={("feed", "density"): density})
     )
     mass = np.array([1.0, 50.0, 0.0]) @ reactions.molar_masses
-    for side in ("feed", "outlet"):
-        volume = found.liquid_volume(side)  # type: ignore[arg-type]
+    for streams in (found.account.inlet, found.account.outlet):
+        volume = found.liquid_volume(streams)
         assert volume is not None
         assert_allclose(volume[0], mass / 1000, rtol=0.05)
     # Without the density the ratio of concentrations still tells the conversion, and the one

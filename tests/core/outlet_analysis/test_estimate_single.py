@@ -569,6 +569,25 @@ def test_a_residual_of_what_was_removed(residual: float) -> None:
     assert found.chi_square < 1e-12
 
 
+@pytest.mark.parametrize("phase", [None, "gas", "liquid"])
+def test_what_is_left_of_a_removed_substance_is_in_the_sample_whatever_its_phase(
+    phase: Any,
+) -> None:
+    # Saturated gas after a knock-out drum: a tenth of it is water, which is found as a liquid.
+    masses = {"A": 0.028, "W": 0.018, "R": 0.044, "D": 0.002}
+    opaque = {n: Substance(n, m, phase=phase if n == "W" else None) for n, m in masses.items()}
+    reactions = reactions_of({"r1": "A + W <=> R + D"}, ["A", "W"], opaque)
+    feed = stream_of(reactions, "feed", flows={"A": 100.0, "W": 300.0})
+    outlet = stream_of(
+        reactions,
+        "outlet",
+        analysis=analysis_of(reactions, "outlet", {"A": (0.1, 0.001)}, removed={"W": 0.1}),
+    )
+    found = estimate(account(reactions, "A", feed, outlet))
+    # (1 - X)/((1 + X)/0.9) = 0.1
+    assert_allclose(conversion_results(found).conversion.value, 0.8, rtol=1e-9)
+
+
 def test_a_residual_above_what_the_stream_holds_is_said() -> None:
     feed = {**FED, "H2O": (95 * KMOL_H, KMOL_H)}
     found = estimate(shift({"CO": (0.05, 0.001)}, feed=feed, removed={"H2O": 0.3}))

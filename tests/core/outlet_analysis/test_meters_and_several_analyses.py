@@ -16,9 +16,7 @@ from core.outlet_analysis.reconciliation import estimate
 from core.streams.metered import DesignDensity
 from core.substances.substance import Substance
 from tests.core.outlet_analysis.plant import account, analysis_of, reactions_of, stream_of
-from tests.core.outlet_analysis.random_accounts import predicted, random_problem
-from tests.core.outlet_analysis.test_estimate_against_least_squares import SEED, with_noise
-from tests.core.outlet_analysis.test_estimate_series import one
+from tests.core.outlet_analysis.random_accounts import one_sample
 
 OPAQUE = {"A": Substance("A", 0.02), "B": Substance("B", 0.01)}
 SPLIT = reactions_of({"r1": "A -> 2 B"}, ["A", "B"], OPAQUE)
@@ -29,32 +27,6 @@ def metered(shown: float, u: float, **design: float) -> AccountProblem:
     """100 mol/s of A, of which the meter of the outlet, laid out for A, tells what became."""
     outlet = stream_of(SPLIT, "outlet", total=(shown, u), design=DesignDensity(0.02, **design))
     return account(SPLIT, "A", FEED, replace(outlet, present=None))
-
-
-def test_a_series_is_its_samples_one_by_one() -> None:
-    # Random accounts of streams analysed more than once and gases metered by pressure difference.
-    rng = np.random.default_rng(SEED + 7)
-    checked = meters = 0
-    while checked < 30:
-        problem, state = random_problem(rng, several=True)
-        noisy = with_noise(problem, state, rng, 4)
-        whole = estimate(noisy)
-        if whole.failed or whole.absent.any():
-            continue
-        checked += 1
-        flows = [f for s in (*problem.feed, *problem.outlet) for f in s.flows]
-        meters += any(f.design is not None for f in flows)
-        for k in range(4):
-            own = {
-                s: Series(of.value[k : k + 1], of.u[k : k + 1]) for s, of in noisy.series.items()
-            }
-            single = estimate(replace(noisy, series=own))
-            assert_allclose(single.z[0], whole.z[k], rtol=1e-9, atol=1e-12)
-            u = np.sqrt(np.diag(whole.covariance[k]))
-            scaled = (single.covariance[0] - whole.covariance[k]) / np.outer(u, u)
-            assert np.abs(scaled).max() < 1e-6
-            assert_allclose(single.chi_square[0], whole.chi_square[k], rtol=1e-7, atol=1e-9)
-    assert meters > 8
 
 
 def test_a_meter_whose_density_varies_over_a_series() -> None:
@@ -69,7 +41,9 @@ def test_a_meter_whose_density_varies_over_a_series() -> None:
     assert note.code == "meter-corrected"
     assert " to {factor_most}" in note.detail
     for k in (0, 2047, 2048, 2999):
-        single = estimate(one(replace(metered(1.0, 0.01, ratio=ratios[k]), series=series), k))
+        single = estimate(
+            one_sample(replace(metered(1.0, 0.01, ratio=ratios[k]), series=series), k)
+        )
         assert_allclose(single.z, found.z[k], rtol=1e-9)
 
 
@@ -158,21 +132,3 @@ def test_what_a_meter_shows_against_the_law_of_the_orifice() -> None:
         # rho/rho_d = 3/2, of which 0.025/0.02 is molar mass.
         design = DesignDensity(0.02, 1.5 / 1.25)
         assert_allclose(design.shown_over_true(kind, 0.025), shown / true, rtol=1e-14)  # type: ignore[arg-type]
-
-
-def test_the_same_account_whether_a_stream_is_analysed_once_or_twice_without_noise() -> None:
-    rng = np.random.default_rng(SEED + 3)
-    checked = 0
-    while checked < 15:
-        problem, state = random_problem(rng, several=True)
-        if max(len(s.analyses) for s in (*problem.feed, *problem.outlet)) < 2:
-            continue
-        truth = predicted(problem, state)
-        series = {s: Series(np.array([v]), np.array([abs(v) * 0.01])) for s, v in truth.items()}
-        found = estimate(replace(problem, series=series))
-        if found.failed or found.absent.any():
-            continue
-        checked += 1
-        assert_allclose(found.feed_flows[0], sum(state.feed), rtol=1e-7, atol=1e-9)
-        assert_allclose(found.extents[0], state.extents, rtol=1e-6, atol=1e-9)
-        assert found.chi_square[0] < 1e-10

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -14,8 +15,10 @@ from core.outlet_analysis.account import build_account
 from core.outlet_analysis.forms import Forms
 from core.outlet_analysis.gauss_newton import Fit, least_squares
 from core.outlet_analysis.preparation import prepare
+from core.outlet_analysis.readings import Series
 from core.outlet_analysis.reconciliation import estimate
 from core.outlet_analysis.solving import Fitted, fit_block
+from core.substances.substance import Substance
 from tests.core.outlet_analysis.plant import (
     SHIFT_FEED,
     SHIFT_OUTLET,
@@ -25,6 +28,7 @@ from tests.core.outlet_analysis.plant import (
     shift_problem,
     stream_of,
 )
+from tests.core.outlet_analysis.random_accounts import noisy
 
 SHIFT = reactions_of({"shift": "CO + H2O <=> CO2 + H2"}, list(SHIFT_FEED))
 
@@ -129,3 +133,75 @@ def test_what_is_open_is_held_and_told() -> None:
     # The feed alone is told, and then nothing stands against an answer.
     (told,) = fit_block(block, built.feed_map)
     assert isinstance(told, Fitted)
+
+
+def test_a_nearly_exact_reading_that_curves_brings_nothing_to_a_standstill() -> None:
+    # A concentration known to one part in ten million beside what is read to 1 %.
+    fed = np.array([SHIFT_FEED[name] for name in SHIFT.names])
+    left = fed + 88.8 * SHIFT.nu[0]
+    streams = []
+    for side, flows, molar_density in (("feed", fed, 40.0), ("outlet", left, 20.0)):
+        found = flows * molar_density / flows.sum()
+        values = {n: (float(c), 0.01 * float(c)) for n, c in zip(SHIFT.names, found, strict=True)}
+        streams.append(
+            stream_of(
+                SHIFT,
+                side,
+                total=(850.0, 17.0),
+                temperature=(600.0, 1.0),
+                pressure=(600 * 8.314 * molar_density, 1e3),
+                analysis=analysis_of(SHIFT, side, values, basis="concentration"),
+            )
+        )
+    problem = account(SHIFT, "CO", *streams)
+    series = noisy(problem, 200, seed=1)
+    certain = ("feed", "analysis", "values", "N2")
+    value = series[certain].value
+    series[certain] = Series(value, 1e-7 * value)
+    found = estimate(replace(problem, series=series))
+    assert not found.failed
+    # It fits no worse than taken as exact, and hardly better.
+    exact = estimate(replace(problem, series={**series, certain: Series(value, 0 * value)}))
+    assert_allclose(found.chi_square, exact.chi_square, rtol=1e-4)
+
+
+def test_the_density_of_a_liquid_is_no_peak_of_its_normalised_analysis() -> None:
+    opaque = {n: Substance(n, m) for n, m in {"A": 0.06, "R": 0.06, "S": 0.09}.items()}
+    reactions = reactions_of({"r1": "A -> R"}, ["A", "S"], opaque)
+    feed = stream_of(reactions, "feed", phase="liquid", flows={"A": (4.0, 0.04), "S": (1.0, 0.01)})
+    outlet = stream_of(
+        reactions,
+        "outlet",
+        phase="liquid",
+        density=(900.0, 5.0),
+        volume=(3.3e-4, 3e-6),
+        analysis=analysis_of(
+            reactions,
+            "outlet",
+            {"A": (1.0, 0.01), "R": (3.0, 0.03), "S": (1.5, 0.015)},
+            basis="mass",
+            normalised=True,
+        ),
+    )
+    built = build_account(account(reactions, "A", feed, outlet))
+    nominal = prepare(built, slice(0, 1)).nominal[0]
+    (scale,) = [k for k, of in enumerate(built.unknowns) if of.kind == "scale"]
+    assert nominal[scale] == 5.5
+
+
+def test_a_first_guess_leaves_the_last_outlet_stream_its_part() -> None:
+    problem = shift_problem()
+    outlets = [
+        stream_of(
+            problem.reactions,
+            f"outlet{q}",
+            present=list(SHIFT_FEED),
+            analysis=analysis_of(problem.reactions, f"outlet{q}", {"CO": (0.1, 0.01)}),
+        )
+        for q in range(2)
+    ]
+    built = build_account(account(problem.reactions, "CO", problem.feed, outlets))
+    nominal = prepare(built, slice(0, 1)).nominal[0]
+    count = len(problem.reactions.names)
+    leaving = (built.stream_map[count : 3 * count] @ nominal).reshape(2, count)
+    assert_allclose(leaving.sum(axis=1)[1], leaving.sum(axis=1)[0], rtol=0.1)

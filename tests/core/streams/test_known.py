@@ -1,5 +1,7 @@
 """Metered streams read directly: what they make together, and what is not known of it."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -7,7 +9,14 @@ from core.constants import GAS_CONSTANT
 from core.errors import Refused
 from core.reactions.build import ReactionInput, build_reaction_set
 from core.streams.known import Conditions, direct_flows, is_direct, join_streams
-from core.streams.metered import Analysis, Component, FlowReading, Measurement, MeteredStream
+from core.streams.metered import (
+    Analysis,
+    Component,
+    FlowReading,
+    Measurement,
+    MeteredStream,
+    Removal,
+)
 
 REACTIONS = build_reaction_set([ReactionInput("r1", "CO + H2O -> CO2 + H2", ("reactions", 0))])[0]
 CO, WATER = REACTIONS.index("CO"), REACTIONS.index("H2O")
@@ -106,7 +115,17 @@ def test_what_needs_an_estimation_is_not_direct():
     )
     assert not is_direct(analysed)
     assert is_direct(flows(CO=("amount", 1.0)))
-    assert is_direct(liquid({"CO": 1.0}, 0.02))
+    known = liquid({"CO": 1.0}, 0.02)
+    assert is_direct(known)
+    # Peaks on a scale of their own, dried samples and lumps are no concentrations of the stream.
+    (of,) = known.analyses
+    lump = Component({CO: 1.0, 1: 1.0}, of.components[0].measurement)
+    for other in (
+        replace(of, normalised=True),
+        replace(of, removed=(Removal(1, 0.0),)),
+        replace(of, components=(lump,)),
+    ):
+        assert not is_direct(replace(known, analyses=(other,)))
 
 
 def test_nothing_flowing_is_refused():
