@@ -152,7 +152,7 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     Raises
     ------
     Refused
-        ``key-absent``, ``condition-missing``, ``hold-needs-batch``,
+        ``key-absent``, ``key-not-consumed``, ``condition-missing``, ``hold-needs-batch``,
         ``sweep-does-not-fit``, ``constant-at-one-temperature``,
         ``equilibrium-constant-does-not-fit``, ``field-not-used``,
         ``compute-budget``, what the constants refuse, and of the state asked for
@@ -229,6 +229,15 @@ def _check(problem: FeedAtEquilibrium) -> None:
             ("key",),
             "the feed holds no {key}, of which a conversion could be counted; name another key, or"
             " state its flow",
+            key=reactions.names[problem.key],
+        )
+    of_key = reactions.nu[:, problem.key]
+    if (of_key > 0).any() and not (of_key < 0).any():
+        raise refuse(
+            "key-not-consumed",
+            ("key",),
+            "no reaction as written consumes {key}; name a reactant as the key, or write the"
+            " reaction the other way round",
             key=reactions.names[problem.key],
         )
     if problem.hold.endswith("volume") and not feed.batch:

@@ -625,6 +625,7 @@ def test_the_approach_of_a_liquid(client):
         (SHIFT, "field-needed", K, {"reactions__0__equilibrium_constant": ...}),
         (SHIFT, "key-absent", "/key", {"key": "NH3", "feed__flows__NH3": "0 mol/s"}),
         (SHIFT, "unknown-key", "/key", {"key": "NH3"}),
+        (SHIFT, "key-not-consumed", "/key", {"key": "CO2", "feed__flows__CO2": "1 mol/s"}),
         (SHIFT, "condition-missing", "/feed/temperature", {"feed__temperature": ...}),
         (SHIFT, "condition-missing", "/feed/pressure", {"feed__pressure": ...}),
         (
