@@ -230,6 +230,17 @@ NOTES: dict[str, Entry] = {
         "Forward and reverse rate balance elsewhere than the stated equilibrium constant says."
         " Check both, their units and what the constants belong to.",
     ),
+    "heat-contradicts-constant": Entry(
+        "Heat contradicts the equilibrium constant",
+        "The enthalpy of reaction that heats are computed with, and that which the equilibrium"
+        " constant's change with temperature implies (van 't Hoff), differ by more than 10 kJ/mol"
+        " and 20 %. Check the signs, and that both belong to the equation as written.",
+    ),
+    "equilibrium-not-at-outlet": Entry(
+        "Equilibrium at other conditions than the outlet's",
+        "The conversion, composition and heat are those of equilibrium at the temperature held,"
+        " which is not that of the measured outlet. State 'at' to have them there.",
+    ),
     "approach-not-known": Entry(
         "Approach not known",
         "The readings do not tell the reaction's quotient at the outlet, or no temperature has it.",
@@ -252,8 +263,8 @@ NOTES: dict[str, Entry] = {
     ),
     "gas-may-condense": Entry(
         "The gas may condense",
-        "An equation of state has a liquid form out of the gas, which the answer takes as one"
-        " phase. Check temperature and pressure.",
+        "An equation of state has a liquid form out of the gas (of the feed or at equilibrium),"
+        " which the answer takes as one phase. Check temperature and pressure.",
     ),
     "no-redundancy": Entry(
         "No redundancy",

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -16,7 +16,7 @@ from core.equilibrium.feed_at_equilibrium import (
     told_once,
 )
 from core.equilibrium.outlet import ReactionApproach
-from core.errors import Note, Subject
+from core.errors import Amount, Note, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import (
@@ -138,6 +138,9 @@ METHOD = (
 )
 
 
+_SAME_TEMPERATURE = 1.0
+"""K within which the outlet measured is at the temperature held."""
+
 SCREENING = Note(
     "screening-calculation",
     "equilibrium of the stated reactions alone, which says nothing of how fast or how safely it is"
@@ -226,7 +229,12 @@ class _Writer:
             assumed.append(CONSTANT_DENSITY)
         sources = self._sources()
         told = () if self.approach is None else self.approach[1]
-        notes = (*edge.read_notes, *told_once((*self.reached.notes, *told)), SCREENING)
+        notes = (
+            *edge.read_notes,
+            *self._elsewhere(),
+            *told_once((*self.reached.notes, *told)),
+            SCREENING,
+        )
         return Answer(
             result=result,
             notes=edge.notes(notes),
@@ -308,13 +316,9 @@ class _Writer:
             }
             if self.feed.phase == "gas" and constant.kind == "thermodynamic" and total:
                 told[id_]["standard_pressure"] = self._absolute(constant.standard_pressure)
-            if isinstance(form, ReactionProperties | LnCorrelation):
-                heat = float(form.enthalpy(self.temperature))
+            heat = constant.enthalpy(self.temperature)
+            if heat is not None:
                 told[id_]["enthalpy_of_reaction"] = self.edge.number(heat, "molar_energy")
-            elif isinstance(form, VantHoff):
-                told[id_]["enthalpy_of_reaction"] = self.edge.number(
-                    float(form.enthalpy), "molar_energy"
-                )
         return told
 
     def _stated_unit(self, subject: Subject) -> str | None:
@@ -343,6 +347,26 @@ class _Writer:
                 self.temperature - self.feed.temperature, "temperature_difference"
             )
         return told
+
+    def _elsewhere(self) -> Iterator[Note]:
+        """Say that the equilibrium is not at the temperature of the outlet measured."""
+        outlet, problem = self.question.outlet, self.problem
+        held = problem.hold.startswith("temperature") and problem.temperature is None
+        if outlet is None or not held:
+            return
+        if abs(self.temperature - outlet.temperature.value) > _SAME_TEMPERATURE:
+            yield Note(
+                "equilibrium-not-at-outlet",
+                "the conversion, composition and heat are those of equilibrium at the feed's"
+                " {temperature}, and the outlet was measured at {measured}; state this under 'at'"
+                " to have them there. The approach is that of the outlet all the same",
+                "warning",
+                outlet.temperature.subject,
+                {
+                    "temperature": Amount(self.temperature, "temperature"),
+                    "measured": Amount(outlet.temperature.value, "temperature"),
+                },
+            )
 
     def _approach(self) -> Json:
         assert self.approach is not None

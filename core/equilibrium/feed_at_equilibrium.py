@@ -18,7 +18,11 @@ from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Hold, Mixt
 from core.errors import Fault, Note, Refused, Subject, refuse
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.mole_account.stoichiometric_table import SOLVENT_UNKNOWN, no_concentrations
-from core.rates.equilibrium_constant import STANDARD_PRESSURE, EquilibriumConstant
+from core.rates.equilibrium_constant import (
+    STANDARD_PRESSURE,
+    EquilibriumConstant,
+    coefficient_sum,
+)
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation
@@ -147,7 +151,7 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     Raises
     ------
     Refused
-        ``key-absent``, ``condition-missing``, ``hold-needs-batch``,
+        ``key-absent``, ``key-not-consumed``, ``condition-missing``, ``hold-needs-batch``,
         ``sweep-does-not-fit``, ``constant-at-one-temperature``,
         ``equilibrium-constant-does-not-fit``, ``field-not-used``,
         ``compute-budget``, what the constants refuse, and of the state asked for
@@ -224,6 +228,15 @@ def _check(problem: FeedAtEquilibrium) -> None:
             ("key",),
             "the feed holds no {key}, of which a conversion could be counted; name another key, or"
             " state its flow",
+            key=reactions.names[problem.key],
+        )
+    of_key = reactions.nu[:, problem.key]
+    if (of_key > 0).any() and not (of_key < 0).any():
+        raise refuse(
+            "key-not-consumed",
+            ("key",),
+            "no reaction as written consumes {key}; name a reactant as the key, or write the"
+            " reaction the other way round",
             key=reactions.names[problem.key],
         )
     if problem.hold.endswith("volume") and not feed.batch:
@@ -500,6 +513,7 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
         for temperature in temperatures
         for note in constant.notes(temperature, constant_subject(reactions, j))
     )
+    yield from _remarks_on_heats(reached)
     written_one_way = [r.id for r in reactions.reactions if not r.reversible]
     if written_one_way:
         yield Note(
@@ -548,6 +562,8 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
         yield from remark_on_gas(
             seen.compressibility, condenses, taken_as_ideal=ideal, subject=("gas_model",)
         )
+        if reached.heat is not None:
+            yield from _remarks_on_feed(problem.feed, equation)
         if ideal:
             nu = reactions.nu[:, problem.feed.in_phase]
             yield from remark_on_constants(
@@ -555,3 +571,33 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
                 [reaction.id for reaction in reactions.reactions],
                 ("gas_model",),
             )
+
+
+def _remarks_on_heats(reached: FeedReached) -> Iterator[Note]:
+    """Remark on constants whose change with temperature belies the heats of the reactions."""
+    problem = reached.problem
+    if reached.heat is None or problem.heats is None:
+        return
+    temperature = float(reached.states.temperature[0])
+    gas = problem.feed.phase == "gas"
+    each = zip(problem.constants, problem.heats.enthalpy(temperature).tolist(), strict=True)
+    for j, (constant, heat) in enumerate(each):
+        order = coefficient_sum(problem.reactions.nu[j], problem.feed.in_phase) if gas else 0.0
+        subject = constant_subject(problem.reactions, j)
+        yield from constant.remarks_on_heat(heat, temperature, order, subject)
+
+
+def _remarks_on_feed(feed: Stream, equation: CubicEquation) -> Iterator[Note]:
+    """Remark on a feed whose enthalpy is counted as a gas's while some of it is liquid."""
+    if feed.temperature is None or feed.pressure is None:
+        return
+    at = np.array([feed.temperature]), np.array([feed.pressure])
+    if would_condense(equation, *at, feed.flows[None, feed.in_phase]).any():
+        yield Note(
+            "gas-may-condense",
+            "at its own temperature and pressure the equation of state has a liquid form out of the"
+            " feed, while its enthalpy is taken as that of one gas: the heat leaves out what"
+            " vaporises the liquid. State the feed as it comes once all of it is gas.",
+            "warning",
+            ("feed",),
+        )

@@ -29,6 +29,11 @@ Kind = Literal["pressure", "concentration", "thermodynamic"]
 _MOST_DECADES = 1000
 """Of an equilibrium constant; oxides of metals reach three hundred at room temperature."""
 
+_SAME_HEAT = 10e3
+"""J/mol by which the slope of ln K and a heat of reaction may differ without a remark, and"""
+_SAME_SHARE = 0.2
+"""by which share of the larger: published correlations of ln K are seldom closer."""
+
 STANDARD_PRESSURE = 1e5
 """Pa: 1 bar, the standard state of gases (IUPAC, 1982)."""
 
@@ -219,6 +224,57 @@ class EquilibriumConstant:
         told: tuple[Note, ...] = tell(temperature, subject) if tell and temperature else ()
         return told
 
+    def enthalpy(self, temperature: float) -> float | None:
+        """Return what it says of the enthalpy of reaction, J per mole of extent.
+
+        None where it is one value, the same at every temperature.
+        """
+        form = self.constant
+        if isinstance(form, VantHoff):
+            return float(form.enthalpy)
+        found = getattr(form, "enthalpy", None)
+        return None if found is None else float(found(temperature))
+
+    def remarks_on_heat(
+        self, heat: float, temperature: float, order: float, subject: Subject
+    ) -> tuple[Note, ...]:
+        """Remark on a heat of reaction that the slope of ln K belies.
+
+        Parameters
+        ----------
+        heat : float
+            That heats are computed with, J per mole of extent.
+        temperature : float
+            K.
+        order : float
+            :func:`coefficient_sum` of a gas, zero of a liquid: the slope of the
+            logarithm of a K_c has the internal energy.
+        subject : Subject
+        """
+        implied = self.enthalpy(temperature)
+        if implied is None:
+            return ()
+        if self.kind == "concentration" and isinstance(self.constant, LnCorrelation):
+            implied += order * GAS_CONSTANT * temperature
+        if abs(implied - heat) <= max(_SAME_HEAT, _SAME_SHARE * max(abs(implied), abs(heat))):
+            return ()
+        return (
+            Note(
+                "heat-contradicts-constant",
+                "at {temperature} the enthalpy of reaction that heats are computed with is {heat},"
+                " and the change of the equilibrium constant with temperature implies {implied}"
+                " (both per mole of reaction as written): check the signs, and that both belong to"
+                " the equation as written",
+                "warning",
+                subject,
+                {
+                    "temperature": Amount(temperature, "temperature"),
+                    "heat": Amount(heat, "molar_energy"),
+                    "implied": Amount(implied, "molar_energy"),
+                },
+            ),
+        )
+
     def quotient_over_constant(
         self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject
     ) -> PowerProduct:
@@ -278,9 +334,9 @@ class EquilibriumConstant:
             raise refuse(
                 "equilibrium-constant-does-not-fit",
                 subject,
-                "a number was given as the equilibrium constant of a liquid reaction that changes "
-                "the number of moles, where it depends on the standard states; give the constant "
-                "in powers of concentration",
+                "the equilibrium constant of this liquid reaction, which changes the number of "
+                "moles, is a number (thermochemistry gives one, too), and would hang on the "
+                "standard states; give the constant in powers of concentration",
             )
 
 

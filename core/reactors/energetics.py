@@ -265,6 +265,13 @@ class _Finder:
 
     def equilibrium(self, constant: EquilibriumConstant) -> None:
         problem, limit = self.problem, self.sizing.limit
+        heat, t = self.told.get("enthalpy"), self.temperature
+        if heat is not None and t is not None:
+            gas = self.feed.phase == "gas"
+            order = coefficient_sum(self.nu, self.feed.in_phase) if gas else 0.0
+            self.notes += constant.remarks_on_heat(
+                heat, t, order, constant_subject(problem.reactions, 0)
+            )
         by_rate = float(limit.conversion) if limit.at_equilibrium else None
         reverse = isinstance(problem.rate.reverse, ReverseConstant)
         if by_rate is not None and not reverse:

@@ -625,6 +625,7 @@ def test_the_approach_of_a_liquid(client):
         (SHIFT, "field-needed", K, {"reactions__0__equilibrium_constant": ...}),
         (SHIFT, "key-absent", "/key", {"key": "NH3", "feed__flows__NH3": "0 mol/s"}),
         (SHIFT, "unknown-key", "/key", {"key": "NH3"}),
+        (SHIFT, "key-not-consumed", "/key", {"key": "CO2", "feed__flows__CO2": "1 mol/s"}),
         (SHIFT, "condition-missing", "/feed/temperature", {"feed__temperature": ...}),
         (SHIFT, "condition-missing", "/feed/pressure", {"feed__pressure": ...}),
         (
@@ -958,3 +959,70 @@ def test_what_a_sweep_is_warned_of_at_its_ends_is_told_once(client):
     assert "correlation-extrapolated" not in codes(client, within)
     sweep = {"over": "temperature", "from": "500 K", "to": "900 K", "points": 3}
     assert codes(client, within, sweep=sweep).count("correlation-extrapolated") == 1
+
+
+# -- what one part of the question says against another
+
+
+MOE = {
+    "ln_coefficients": {"constant": -4.33, "inverse_temperature": "4577.8 K"},
+    "between": ["250 degC", "550 degC"],
+}
+"""Of CO + H2O <=> CO2 + H2 (W. Moe, 1962; from memory)."""
+
+
+def test_a_constant_of_another_equation_than_the_heat_is_told(client):
+    right = changed(SHIFT, reactions__0__equilibrium_constant=MOE)
+    assert "heat-contradicts-constant" not in codes(client, right)
+    doubled = changed(right, reactions__0__equation="2 CO + 2 H2O <=> 2 CO2 + 2 H2")
+    answer = post(client, "equilibrium", doubled).get_json()
+    (note,) = [n for n in answer["notes"] if n["code"] == "heat-contradicts-constant"]
+    assert (note["severity"], note["pointer"]) == ("warning", K)
+    assert "implies -38.06" in note["detail"]
+    backwards = {"ln_coefficients": {"constant": 4.33, "inverse_temperature": "-4577.8 K"}}
+    assert "heat-contradicts-constant" in codes(
+        client, changed(SHIFT, reactions__0__equilibrium_constant=backwards)
+    )
+
+
+def test_the_heat_behind_a_constant_of_concentrations_is_that_of_internal_energy(client):
+    """The slope of ln K_c lacks 2 RT of the enthalpy, without which -90 kJ/mol would be told."""
+    t, order = 700.0, -2.0
+    k_c = {
+        "ln_coefficients": {
+            "constant": 0.0,
+            "inverse_temperature": f"{(90e3 + order * R * t) / R} K",
+        },
+        "unit": "m6/mol2",
+    }
+    request = changed(AMMONIA, reactions__0__equilibrium_constant=k_c)
+    assert "heat-contradicts-constant" not in codes(client, request)
+
+
+def test_a_feed_that_is_partly_liquid_is_told_where_its_heat_counts(client):
+    hot = changed(SHIFT, at={"temperature": "700 K"})
+    assert "gas-may-condense" not in codes(client, hot)
+    cold = post(client, "equilibrium", changed(hot, feed__temperature="300 K")).get_json()
+    (note,) = [n for n in cold["notes"] if n["code"] == "gas-may-condense"]
+    assert note["pointer"] == "/feed"
+    assert "vaporises" in note["detail"]
+
+
+def test_an_equilibrium_elsewhere_than_the_outlet_is_told(client):
+    outlet = {
+        "phase": "gas",
+        "temperature": "740 K",
+        "pressure": "25 bar",
+        "analysis": {"basis": "mole", "removed": ["H2O"], "values": {"CO": "6 %"}},
+    }
+    request = changed(SHIFT, outlet=outlet)
+    answer = post(client, "equilibrium", request).get_json()
+    (note,) = [n for n in answer["notes"] if n["code"] == "equilibrium-not-at-outlet"]
+    assert note["pointer"] == "/outlet/temperature"
+    for there in (
+        changed(request, at={"temperature": "740 K"}),
+        changed(request, hold="enthalpy-pressure"),
+        changed(request, feed__temperature="740 K"),
+        SHIFT,
+    ):
+        assert "equilibrium-not-at-outlet" not in codes(client, there)

@@ -193,6 +193,15 @@ def test_a_constant_beside_a_reverse_rate_is_heeded(client):
     assert told["adiabatic"] == right["adiabatic"]
 
 
+def test_a_heat_of_the_wrong_sign_is_told(client):
+    heat = {"heat": "41 kJ/mol", "of": "CO", "at": "25 degC"}
+    answer = post(client, "volume", changed(SHIFT, reactions__0__enthalpy=heat)).get_json()
+    assert "heat-contradicts-constant" in {note["code"] for note in answer["notes"]}
+    heat["heat"] = "-41 kJ/mol"
+    answer = post(client, "volume", changed(SHIFT, reactions__0__enthalpy=heat)).get_json()
+    assert "heat-contradicts-constant" not in {note["code"] for note in answer["notes"]}
+
+
 def test_a_constant_of_one_temperature_has_no_approach(client):
     answer = result(client, "volume", changed(SHIFT, reactions__0__equilibrium_constant=20.0))
     assert set(answer["equilibrium"]) == {"at_outlet_temperature"}
