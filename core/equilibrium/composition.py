@@ -278,7 +278,10 @@ def _solve_one(search: _Search, steps: Steps, pattern: BoolArray, rows: IntArray
         return rows[:0]
     gone = np.isneginf(found.ln_amounts[ended])
     mixture_gone = gone[:, task.in_mixture[live]].any(axis=1)
-    search.status[rows[ended[mixture_gone]]] = Status.MIXTURE_VANISHED
+    # Without pure phases nothing holds what would have left the mixture: a constant beyond sense.
+    search.status[rows[ended[mixture_gone]]] = (
+        Status.MIXTURE_VANISHED if len(search.pure) else Status.NOT_CONVERGED
+    )
     out = ended[~mixture_gone]
     amounts = np.zeros((len(out), len(pattern)))
     amounts[:, live] = np.exp(found.ln_amounts[out])

@@ -28,6 +28,7 @@ CONSISTENT = 1e-6
 _FUGACITIES_SETTLED = 5e-12
 _MOST_ROUNDS = 80
 _TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
+_LEAST_SIZE = 1e-290  # of a trace, whose reciprocal times a coefficient is still a number
 _RUNGS = 30  # between the bounds of a temperature that is sought, where there is no answer at one
 _HALVINGS = 20
 
@@ -73,7 +74,7 @@ def _extents(nu: FloatArray, change: FloatArray, size: FloatArray) -> FloatArray
     small = np.flatnonzero((np.abs(found) < _TELLING * size.max(axis=1)[:, None]).any(axis=1))
     if not len(small):
         return found
-    weight = 1.0 / np.where(size[small] > 0, size[small], 1.0)
+    weight = 1.0 / np.where(size[small] > 0, np.maximum(size[small], _LEAST_SIZE), 1.0)
     # Each reaction in units in which what it makes or uses of the scarcest is one.
     weighted = nu * weight[:, None, :]
     unit = 1.0 / np.abs(weighted).max(axis=2)

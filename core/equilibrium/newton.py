@@ -38,6 +38,8 @@ _SHORTER = 0.35  # of a step, where it was too long
 _TO_NOTHING = np.log(1e-6)  # of what it was before
 _ROUNDING = np.log(1e-13)  # of all matter
 _SMALLEST_SHARE = 1e-12
+_USUAL = 4  # trials of a step's length
+_PARTS, _ROUNDS = 16, 15  # of a step on the way to its end: as good as 60 halvings, in fewer calls
 _FLAT = 100.0  # how much longer than the affinities a step may be
 _STRIDE = 5.0  # of ln of a mixture that pure phases alone make up
 _CLOSE = 1e-3  # |ln(Q/K)| below which Newton's method needs no guidance
@@ -410,7 +412,9 @@ def _advance(
     before = _gibbs_energy(system, basis, ln_n) if has_pure else share
     close = np.abs(affinity).max(axis=1) < _CLOSE
     below: BoolArray = np.zeros(ln_n.shape, dtype=bool)  # zero, had a little more been taken
+    tried = 0
     while len(todo):
+        tried += 1
         b = basis.samples(todo) if len(todo) < count else basis
         moved = ln_minor[todo] + share[todo, None] * change[todo]
         trial = _majors(b, ln_n[todo], moved)
@@ -435,6 +439,10 @@ def _advance(
     spent = np.full(count, -1, dtype=np.intp)
     low = np.where(~system.in_mixture & below & (new < system.spent_below[:, None]), new, np.inf)
     near = np.flatnonzero(np.isfinite(low).any(axis=1))
+    # The first trials are counted with the step.
+    if system.budget is not None and (tried > _USUAL or len(near)):
+        more = max(tried - _USUAL, 0) + (2 * _ROUNDS if len(near) else 0)
+        system.budget.spend(0.25 * more * CALL)
     if len(near):
         found, first = _to_its_end(basis.samples(near), ln_n, ln_minor, share, change, new, near)
         # On the way there, too, the Gibbs energy must fall: else it is not to be used up.
@@ -466,16 +474,21 @@ def _to_its_end(
         Which it is; -1 where none does.
     """
     taken, refused = share[rows], share[rows] / _SHORTER
-    for _ in range(60):
-        middle = 0.5 * (taken + refused)
-        trial = _majors(basis, ln_n[rows], ln_minor[rows] + middle[:, None] * change[rows])
-        good = np.isfinite(trial).all(axis=1)
-        taken, refused = np.where(good, middle, taken), np.where(good, refused, middle)
+    at = np.arange(len(rows))
+    each = np.repeat(at, _PARTS - 1)
+    parts, of_each = np.arange(1, _PARTS) / _PARTS, rows[each]
+    tried = basis.samples(each)
+    for _ in range(_ROUNDS):
+        between = taken[:, None] + parts * (refused - taken)[:, None]
+        moved = ln_minor[of_each] + between.reshape(-1, 1) * change[of_each]
+        good = np.isfinite(_majors(tried, ln_n[of_each], moved)).all(axis=1)
+        reached = np.cumprod(good.reshape(between.shape), axis=1).sum(axis=1)
+        ways = np.column_stack([taken, between, refused])
+        taken, refused = ways[at, reached], ways[at, reached + 1]
     trial = _majors(basis, ln_n[rows], ln_minor[rows] + taken[:, None] * change[rows])
     fall = trial - new[rows]
     np.put_along_axis(fall, basis.minor, 0.0, axis=1)
     first = np.argmin(fall, axis=1)
-    at = np.arange(len(rows))
     ended = np.isfinite(trial).all(axis=1) & (
         (fall[at, first] < _TO_NOTHING) | (trial[at, first] < _ROUNDING)
     )

@@ -13,7 +13,7 @@ from numpy.testing import assert_allclose
 from uncertainties import ufloat
 from uncertainties.umath import log as ulog
 
-from core.equilibrium import budget
+from core.equilibrium import budget, newton
 from schemas.examples import EXAMPLES
 from tests.support import SHIFT_FEED, assert_refused, changed, post, result, value
 
@@ -1026,3 +1026,57 @@ def test_an_equilibrium_elsewhere_than_the_outlet_is_told(client):
         SHIFT,
     ):
         assert "equilibrium-not-at-outlet" not in codes(client, there)
+
+
+def test_a_constant_beyond_sense_is_no_vanished_gas(client):
+    # No pure solid or liquid is there that could hold what the gas would lose.
+    hot = changed(isomers(1, points=2), hold=..., sweep=...)
+    hot["species"]["S1"]["enthalpy_of_formation"] = "3e11 kJ/mol"
+    refused(client, hot, "equilibrium-not-found", "/feed")
+
+
+def test_what_a_step_tries_counts_as_work(client, monkeypatch):
+    # Carbon comes and goes at nearly every temperature tried, each time at the end of a step.
+    work = []
+    spend, majors = budget.Budget.spend, newton._majors
+
+    def spending(self, amount):
+        work.append(amount + budget.CALL)
+        spend(self, amount)
+
+    tried = []
+    monkeypatch.setattr(budget.Budget, "spend", spending)
+    monkeypatch.setattr(newton, "_majors", lambda *args: tried.append(1) or majors(*args))
+    coke = {
+        "species": {"C": {"phase": "solid"}},
+        "reactions": [
+            {
+                "equation": "C + H2O <=> CO + H2",
+                "equilibrium_constant": {
+                    "constant": 7e-12,
+                    "at": "697 K",
+                    "enthalpy": "181 kJ/mol",
+                },
+            },
+            {
+                "equation": "CH4 <=> C + 2 H2",
+                "equilibrium_constant": {
+                    "constant": 190,
+                    "at": "1234 K",
+                    "enthalpy": "66 kJ/mol",
+                },
+            },
+        ],
+        "key": "H2O",
+        "feed": {
+            "phase": "gas",
+            "temperature": "531 K",
+            "pressure": "66 kPa",
+            "flows": {"CO": "1.8 kmol/h", "H2": "7 kmol/h", "H2O": "5.6 kmol/h"},
+        },
+        "hold": "enthalpy-pressure",
+        "gas_model": "soave-redlich-kwong",
+    }
+    ask(client, coke)
+    assert len(tried) > 1000
+    assert sum(work) > 0.25 * len(tried) * budget.CALL

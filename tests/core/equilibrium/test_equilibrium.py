@@ -231,3 +231,16 @@ def test_the_extent_of_a_trace_is_known_as_well_as_the_trace(ln_k):
     assert_allclose(found.extents[0], [amounts["NO"] / 2, amounts["NO2"] / 2], rtol=1e-12)
     # What takes no part is what was fed, to the last digit.
     assert amounts["Ar"] == 1.0
+
+
+def test_a_trace_too_small_for_a_reciprocal_has_an_extent():
+    reactions = reaction_set(REFORMING)
+    # Methane ends up near 1e-315 mol, a number whose reciprocal is none.
+    found = solve_equilibrium(
+        problem(reactions, [{"CO": 1.0, "H2": 2.0, "H2O": 1.0}], [725.0, 0.0])
+    )
+    assert not found.faults
+    methane = amounts_by_name(reactions, found)["CH4"]
+    assert 0 < methane < 1e-308
+    assert_allclose(found.extents[0, 0], -methane, rtol=1e-3)
+    assert_allclose(found.extents[0, 1], amounts_by_name(reactions, found)["CO2"], rtol=1e-12)
