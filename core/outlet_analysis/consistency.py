@@ -149,6 +149,7 @@ class Examined:
         )
 
 
+@np.errstate(over="ignore", invalid="ignore")
 def examine(fit: Fit, z: FloatArray, natural: FloatArray, stated: Stated) -> Examined:
     """Test the readings proper, soft or nearly exact, with the limits let loose."""
     at_solution = curvature(fit, z, natural)

@@ -36,6 +36,10 @@ from core.outlet_analysis.preparation import (
     natural_size,
 )
 
+LEAST_TOLD_SPLIT, MOST_SPLIT = 1e-6, 1e6
+"""Purged over returned beyond which no plant goes; where all leaves in products too, the purge may
+be shut."""
+
 
 @dataclass(frozen=True, eq=False)
 class Fitted:
@@ -303,8 +307,12 @@ def _solved(
     whole = fit
     fit = without_repeats(fit, start, natural)
     solution = least_squares(fit, start, natural)
+    account = block.account
+    if account.split >= 0:
+        solution = Solution(solution.z, solution.converged & ~run_away(account, solution.z))
     if group.others and not solution.converged.all():
-        solution = _started_anew(fit, solution, natural, [of[mine] for of in group.others])
+        others = [of[mine] for of in group.others]
+        solution = _started_anew(account, fit, solution, natural, others)
     good = solution.converged
     if not good.all():
         yield rows[~good], not_converged(block.account)
@@ -394,8 +402,26 @@ def _fully_correlated(account: Account, fit: Fit, sample: int) -> Fault:
     )
 
 
+def run_away(account: Account, z: FloatArray) -> BoolArray:
+    """Which of the unknowns (N, n) have a split that is none any more, shape (N,).
+
+    Where next to nothing is fed and leaves, or is returned, compositions that
+    do not agree may be met by what rounding leaves of flows.
+    """
+    split = np.abs(z[:, account.split])
+    lost: BoolArray = np.asarray(~(split < MOST_SPLIT))
+    if len(account.equations):
+        # Something can leave in the purge alone.
+        lost |= ~(split > LEAST_TOLD_SPLIT)
+    return lost
+
+
 def _started_anew(
-    fit: Fit, solution: Solution, natural: FloatArray, others: Sequence[FloatArray]
+    account: Account,
+    fit: Fit,
+    solution: Solution,
+    natural: FloatArray,
+    others: Sequence[FloatArray],
 ) -> Solution:
     """Start the samples that came to no rest from elsewhere, one place after the other."""
     z, converged = np.array(solution.z), np.array(solution.converged)
@@ -404,8 +430,9 @@ def _started_anew(
         if not len(rows):
             break
         found = least_squares(fit.samples(rows), start[rows], natural[rows])
-        z[rows[found.converged]] = found.z[found.converged]
-        converged[rows] = found.converged
+        good = found.converged & ~run_away(account, found.z)
+        z[rows[good]] = found.z[good]
+        converged[rows] = good
     return Solution(z, converged)
 
 

@@ -17,6 +17,7 @@ from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.preparation import prepare
 from core.outlet_analysis.readings import BELOW, Series
 from core.outlet_analysis.reconciliation import estimate
+from core.outlet_analysis.solving import run_away
 from core.reactions.elements import element_matrix
 from tests.core.outlet_analysis.full_runs import minima
 from tests.core.outlet_analysis.plant import analysis_of, reactions_of, stream_of, with_streams
@@ -286,6 +287,23 @@ def test_uncertainties_are_those_of_readings_drawn_anew(returned: float) -> None
         assert told.any()
         assert_allclose(spread[told], u[told], rtol=0.06)
     assert 0.03 < found.inconsistent.mean() < 0.07
+
+
+def test_a_split_that_is_none_any_more_is_no_account() -> None:
+    # Of 900 random accounts one came to rest where nothing was fed and nothing left.
+    both = build_account(loop())
+    assert both.split >= 0
+    problem = loop()
+    assert problem.recycle is not None
+    purge = replace(problem.recycle.purge, present=None)
+    alone = build_account(
+        replace(problem, recycle=replace(problem.recycle, purge=purge, products=()))
+    )
+    # In both something leaves in the purge alone: the inerts, or all of it.
+    for account, lost in ((both, [True, False, True]), (alone, [True, False, True])):
+        z = np.ones((3, len(account.unknowns)))
+        z[:, account.split] = [1e12, 0.1, 1e-15]
+        assert run_away(account, z).tolist() == lost
 
 
 def test_a_gross_error_in_the_purge_is_named() -> None:
