@@ -444,10 +444,10 @@ class _Writer:
         columns = {
             "substance": list(self.names),
             f"inlet {word}": (self.feed.flows / flow.factor).tolist(),
-            f"outlet {word}": (amounts / flow.factor).tolist(),
+            f"equilibrium {word}": (amounts / flow.factor).tolist(),
             "mole fraction": _cells(fractions),
         }
-        return Table(columns, {f"inlet {word}": flow.unit, f"outlet {word}": flow.unit})
+        return Table(columns, {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit})
 
     def _page(self) -> Page:
         edge, problem = self.edge, self.problem

@@ -14,7 +14,7 @@ from core.reactions.balance import check_balance
 from core.reactions.elimination import eliminate
 from core.reactions.equation import ParsedEquation, parse_equation
 from core.reactions.reaction_set import Reaction, ReactionSet
-from core.substances.formula import make_substance, shown, split_state, two_phases
+from core.substances.formula import is_name, make_substance, shown, split_state, two_phases
 from core.substances.substance import Phase, Substance
 
 
@@ -190,6 +190,15 @@ def _parse_all(
                 id=shown(reaction.id),
             ).faults
         ids.add(reaction.id)
+        if not is_name(reaction.id):
+            # What cannot be seen could turn round what stands beside it.
+            faults += refuse(
+                "name-not-usable",
+                reaction.subject,
+                "{id} cannot name a reaction: an id has printable characters, and begins and ends"
+                " with none that is white space.",
+                id=shown(reaction.id),
+            ).faults
         try:
             parsed.append((reaction, parse_equation(reaction.text, known, reaction.subject)))
         except Refused as refusal:

@@ -146,6 +146,11 @@ def molar_mass_of(formula: Formula, subject: Subject = ()) -> float:
     return float(total / 1000)
 
 
+def is_name(text: str) -> bool:
+    """Whether a text can name something: printable, not empty, no white space at its ends."""
+    return bool(text) and text == text.strip() and text.isprintable()
+
+
 def make_substance(
     name: str,
     *,
@@ -182,7 +187,7 @@ def make_substance(
         ``molar-mass-contradicts-formula``, ``phase-contradicts`` or
         ``name-not-usable``.
     """
-    if not name or len(name) > MAX_LENGTH or name != name.strip() or not name.isprintable():
+    if len(name) > MAX_LENGTH or not is_name(name):
         raise refuse(
             "name-not-usable",
             subject,

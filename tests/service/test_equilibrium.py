@@ -365,7 +365,7 @@ def test_csv_holds_the_numbers_of_the_json_answer(client, sweep):
         assert header == [
             "substance",
             "inlet flow [kmol/h]",
-            "outlet flow [kmol/h]",
+            "equilibrium flow [kmol/h]",
             "mole fraction",
         ]
         for row in rows:

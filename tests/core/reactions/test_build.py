@@ -225,3 +225,10 @@ def test_elements_and_mass_are_conserved_in_whatever_order(equations, random):
     fixed, _ = build_reaction_set(inputs(*equations), {}, feed("H2O", "CO", "N2", "Ar", "O2"))
     order = [reactions.index(name) for name in fixed.names]
     assert_array_equal(reactions.nu[:, order], fixed.nu)
+
+
+@pytest.mark.parametrize("id_", ["\u202eabc", "a\u200bb", "\ufeff", " a", "a\u2028"])
+def test_an_id_that_cannot_be_seen_is_refused(id_):
+    with pytest.raises(Refused) as refused:
+        build_reaction_set([ReactionInput(id_, "CO + H2O <=> CO2 + H2", ("reactions", 0))])
+    assert [fault.code for fault in refused.value.faults] == ["name-not-usable"]
