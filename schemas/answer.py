@@ -2,26 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
 
 from schemas.edge import Json
-
-if TYPE_CHECKING:
-    from schemas.page import Page
-
-
-@dataclass(frozen=True)
-class Table:
-    """Columns of equal length, and the unit of each that has one."""
-
-    columns: Mapping[str, list[Any]]
-    units: Mapping[str, str]
-
-    def document(self) -> Json:
-        """Return the table as it stands in JSON."""
-        return {"columns": dict(self.columns), "units": dict(self.units)}
+from schemas.page import Page
+from schemas.table import Table
 
 
 @dataclass(frozen=True)

@@ -28,7 +28,7 @@ from core.rates.equilibrium_constant import (
 )
 from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
-from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import LARGEST_EXPONENT, ApproachSchema, write_approach
 from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
@@ -37,6 +37,7 @@ from schemas.fields import Map, describe
 from schemas.gas_model import EQUATIONS
 from schemas.page import Curve, Page, Plot, told
 from schemas.results import OpenSchema, TableSchema, envelope, number, numbers_by_name
+from schemas.table import Table
 from schemas.thermochemistry import write_critical, write_sources
 from schemas.units import find_unit, spell
 

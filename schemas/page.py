@@ -11,8 +11,8 @@ from dataclasses import dataclass
 from math import floor, isfinite, log10
 from typing import Any, Literal
 
-from schemas.answer import Table
 from schemas.edge import Json
+from schemas.table import Table
 
 Cells = Sequence[float | None]
 

@@ -16,7 +16,7 @@ from core.mole_account.stoichiometric_table import (
     TableProblem,
 )
 from core.reactions.reaction_set import ReactionSet
-from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import (
     StreamResultSchema,
@@ -31,6 +31,7 @@ from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_reques
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
+from schemas.table import Table
 
 MAX_CONVERSIONS = 1000
 

@@ -24,7 +24,7 @@ from core.streams.stream import Stream, StreamPhase
 from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.known_heats import KnownHeats, known_heats
 from core.thermochemistry.reaction_properties import ReactionProperties
-from schemas.answer import ATOMIC_WEIGHTS, Answer, Table
+from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import ApproachSchema, write_approach
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.equilibrium_constant import read_equilibrium_constant
@@ -47,6 +47,7 @@ from schemas.results import (
 )
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
+from schemas.table import Table
 from schemas.thermochemistry import read_heats, write_sources
 
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import csv
 import io
 
-from schemas.answer import Table
+from schemas.table import Table
 
 RISKY = ("=", "+", "-", "@", "\t", "\r")
 """A text cell that starts so would be run as a formula by a spreadsheet."""

@@ -9,9 +9,10 @@ from html.parser import HTMLParser
 
 import pytest
 
-from schemas.answer import Answer, Table
+from schemas.answer import Answer
 from schemas.examples import EXAMPLES
 from schemas.page import Curve, Page, Plot, told
+from schemas.table import Table
 from service import drawing, pages
 
 SVG = "{http://www.w3.org/2000/svg}"

@@ -1,0 +1,21 @@
+"""Tables of answers: the one shape that JSON, CSV and pages are made from."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from schemas.edge import Json
+
+
+@dataclass(frozen=True)
+class Table:
+    """Columns of equal length, and the unit of each that has one."""
+
+    columns: Mapping[str, list[Any]]
+    units: Mapping[str, str]
+
+    def document(self) -> Json:
+        """Return the table as it stands in JSON."""
+        return {"columns": dict(self.columns), "units": dict(self.units)}
