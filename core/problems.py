@@ -364,6 +364,11 @@ _STREAMS: dict[str, Entry] = {
         " registry numbers. Declare under 'species' which is meant ('registry_number' or 'name'),"
         " call the substance by one of these names, or state the value.",
     ),
+    "substance-named-twice": Entry(
+        "One substance under two names",
+        "Two names stand for what the packaged tables know as one substance, which would count"
+        " twice. Write it one way, or say which other substance is meant.",
+    ),
     "identity-contradicts-formula": Entry(
         "Registry number or name of another substance",
         "A substance is declared with the registry number or name of one that has another formula."

@@ -290,6 +290,7 @@ def _check(problem: FeedAtEquilibrium) -> None:
             "found a volume, and {hold} is held, from which it follows; leave it out",
             hold=problem.hold,
         )
+    _check_names(problem)
     varies = problem.over == "temperature" or not problem.hold.startswith("temperature")
     if varies:
         check_temperature_dependence(problem)
@@ -302,6 +303,32 @@ def _check(problem: FeedAtEquilibrium) -> None:
         }
         if faults:
             raise Refused(list(faults.values()))
+
+
+def _check_names(problem: FeedAtEquilibrium) -> None:
+    """Refuse two names of what the tables know as one substance: it would count twice."""
+    used = {p.substance: p for p in problem.properties or ()}
+    for constant in problem.constants:
+        if isinstance(constant.constant, ReactionProperties):
+            used.update((p.substance, p) for p in constant.constant.properties)
+    known: dict[tuple[str, str], StandardProperties] = {}
+    for p in used.values():
+        if p.registry_number is None:
+            continue
+        twin = known.setdefault((p.registry_number, p.phase), p)
+        if twin is not p:
+            raise refuse(
+                "substance-named-twice",
+                ("species", p.substance),
+                "{name} and {twin} are both {what} ({number}, {phase}), which would count twice;"
+                " write it one way, or state which other substance is meant by 'name' or"
+                " 'registry_number'",
+                name=p.substance,
+                twin=twin.substance,
+                what=p.name or "one substance",
+                number=p.registry_number,
+                phase=p.phase,
+            )
 
 
 def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:

@@ -688,6 +688,20 @@ def equilibrium(**places: Any):
     return EQUILIBRIUM, changed(STILL, **places)
 
 
+case(
+    "substance-named-twice",
+    equilibrium(
+        species={"monoxide": {"formula": "CO"}},
+        reactions=[
+            {
+                "equation": "monoxide + H2O <=> CO2 + H2",
+                "equilibrium_constant": {"from": "thermochemistry"},
+            },
+            {"equation": "CO + H2O <=> CO2 + H2", "equilibrium_constant": 10},
+        ],
+    ),
+    "/species/monoxide",
+)
 case("hold-needs-batch", equilibrium(hold="energy-volume"), "/hold")
 case(
     "sweep-does-not-fit",
