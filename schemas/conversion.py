@@ -15,11 +15,13 @@ from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.conversion import YieldBasis
 from core.outlet_analysis.space_time_yield import ReactorSize, SizeBasis
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.equation import KnownGas
 from core.streams.known import Conditions
 from core.streams.metered import Measurement, MeteredStream
 from schemas.edge import EdgeMap, Json, RequestReader
-from schemas.feed import is_batch, read_conditions
+from schemas.feed import is_batch, known_gas, read_conditions
 from schemas.fields import Choice, Map, Number, Quantity, Text, describe
+from schemas.gas_model import GasReader, gas_model, interactions
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
 from schemas.streams import Side, StreamReader, StreamSchema, substances_of
@@ -84,6 +86,8 @@ class ConversionRequest(AccountSchema):
         metadata=describe("Its size; the answer then gives the space-time yields."),
     )
     yields = fields.Nested(YieldsSchema)
+    gas_model = gas_model()
+    interactions = interactions()
     uncertainty = fields.Nested(UncertaintySchema)
 
 
@@ -111,6 +115,8 @@ class ConversionQuestion:
         Of the feed streams, then of the outlet streams.
     size : ReactorSize or None
         What space-time yields count by, where stated.
+    gas : KnownGas or None
+        The gas model, where it is not ideal.
     """
 
     problem: AccountProblem
@@ -121,6 +127,7 @@ class ConversionQuestion:
     readings: StreamReader
     stream_ids: tuple[str, ...]
     size: ReactorSize | None
+    gas: KnownGas | None = None
 
 
 def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
@@ -130,16 +137,29 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    return read_request(_REQUEST, document, ("feed", "outlet"), read_question)
+    return read_request(_REQUEST, document, ("feed", "outlet"), _read_with_gas)
+
+
+def _read_with_gas(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> ConversionQuestion | None:
+    return read_question(request, reader, reactions, GasReader.of(request, reader, reactions))
 
 
 def read_question(
-    request: Json, reader: RequestReader, reactions: ReactionSet
+    request: Json,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    models: GasReader | None = None,
 ) -> ConversionQuestion | None:
-    """Return the question of a request that states readings of feed and outlet."""
+    """Return the question of a request that states readings of feed and outlet.
+
+    What Z is not stated is found by the gas model that ``models`` reads.
+    """
     key = read_key(request, reader, reactions)
     batch = is_batch(request["feed"]) or is_batch(request["outlet"])
-    readings = StreamReader(reader, reactions, batch)
+    real = models is not None and models.real
+    readings = StreamReader(reader, reactions, batch, real=real)
     sides, conditions = {}, {}
     ids: list[str] = []
     names: tuple[Side, ...] = ("feed", "outlet")
@@ -155,6 +175,10 @@ def read_question(
     yields = request.get("yields", {})
     _check_yields(yields, reader, reactions)
     size = _size(request["reactor"], reader, batch) if "reactor" in request else None
+    gas = None
+    if models is not None and not reader.faults:
+        each = [stream for of in sides.values() for stream in of]
+        gas = known_gas(models, each, reactions, [*conditions.values()])
     if reader.faults:
         return None
     problem = AccountProblem(
@@ -168,7 +192,7 @@ def read_question(
     per_key = {reactions.index(name): s for name, s in yields.get("per_key", {}).items()}
     basis: YieldBasis = yields.get("basis", "key")
     return ConversionQuestion(
-        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids), size
+        problem, basis, yields.get("element"), per_key, conditions, readings, tuple(ids), size, gas
     )
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
@@ -17,6 +18,7 @@ from core.rates.power_law import ByAffinity
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.sizing import Sizing, SizingProblem
+from core.real_gas.witness import witness_of
 from core.streams.stream import Stream
 from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
@@ -360,7 +362,7 @@ def write(problem: SizingProblem, sizing: Sizing, edge: EdgeMap) -> Answer:
     of_k = _EquilibriumNotes.of(problem)
     return Answer(
         result=result,
-        notes=edge.notes((*edge.read_notes, *sizing.notes, *of_k.notes, *_notes(feed))),
+        notes=edge.notes((*edge.read_notes, *sizing.notes, *of_k.notes, *_notes(problem, sizing))),
         assumed=edge.notes((*edge.read_assumed, *of_k.assumed, *_assumed(problem))),
         method=METHOD,
         data=f"{ATOMIC_WEIGHTS}; {PACKAGED}" if of_k.properties else ATOMIC_WEIGHTS,
@@ -414,8 +416,22 @@ def _profile(sizing: Sizing, dimension: str, edge: EdgeMap) -> Table:
     )
 
 
-def _notes(feed: Stream) -> tuple[Note, ...]:
-    return (SOLVENT_UNKNOWN, SCREENING) if feed.solvent_unknown else (SCREENING,)
+def _notes(problem: SizingProblem, sizing: Sizing) -> tuple[Note, ...]:
+    feed = problem.feed
+    if feed.solvent_unknown:
+        return (SOLVENT_UNKNOWN, SCREENING)
+    return (*_gas_notes(problem.reactions, feed, sizing.outlet), SCREENING)
+
+
+def _gas_notes(reactions: ReactionSet, *streams: Stream) -> Iterator[Note]:
+    """Say where a gas taken as ideal is not."""
+    if streams[0].phase != "gas" or streams[0].compressibility != 1.0:
+        return
+    witness = witness_of(reactions, streams[0].in_phase.tobytes())
+    for stream, subject in zip(streams, (("feed",), ("target",)), strict=True):
+        t, p = stream.temperature, stream.pressure
+        if witness is not None and t is not None and p is not None:
+            yield from witness.remarks(float(t), float(p), stream.flows, subject)
 
 
 def _assumed(problem: SizingProblem) -> list[Note]:

@@ -7,7 +7,7 @@ from typing import Any
 from flask import Blueprint
 
 from core.outlet_analysis.conversion import conversion_results
-from core.outlet_analysis.reconciliation import estimate
+from core.outlet_analysis.gases import estimate_of_gas
 from schemas import conversion as wire
 from schemas.answer import Answer
 from schemas.contract import operation
@@ -22,7 +22,7 @@ def answer(document: Any) -> Answer:
     """Return the account that fits the readings best, and what it says of the reactor."""
     question, edge = wire.read(document)
     with edge.locating():
-        found = estimate(question.problem)
+        found = estimate_of_gas(question.problem, question.gas)
         results = conversion_results(
             found,
             basis=question.basis,

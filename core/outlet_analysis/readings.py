@@ -54,6 +54,8 @@ class Series:
         m3/mol at a gas meter's own conditions, where they vary.
     density_ratio : ndarray, shape (N,), or None
         ``ratio`` of the design of a differential-pressure meter, where it varies.
+    at_meter : (ndarray, ndarray), each of shape (N,), or None
+        ``at_meter`` of the reading, where it varies; both are for Z = 1 then.
     """
 
     value: FloatArray
@@ -61,6 +63,7 @@ class Series:
     bound: NDArray[np.int8] | None = None
     molar_volume: FloatArray | None = None
     density_ratio: FloatArray | None = None
+    at_meter: tuple[FloatArray, FloatArray] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -474,7 +477,9 @@ class ReadingWriter:
         """Weights of the substances in an analysis: by amount, or by mass."""
         return self.masses if analysis.basis in ("mass", "mass-concentration") else self.ones
 
-    def divisor(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+    def divisor(
+        self, g: int, analysis: Analysis
+    ) -> tuple[float | FloatArray, list[tuple[int, float]], int]:
         """Constant, powers and cleared base that every value of an analysis is counted against."""
         if analysis.normalised:
             # The total of the peaks stands for whatever they were scaled by.
@@ -495,7 +500,9 @@ class ReadingWriter:
             found[substance] = share * weights[substance]
         return found
 
-    def per_volume(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+    def per_volume(
+        self, g: int, analysis: Analysis
+    ) -> tuple[float | FloatArray, list[tuple[int, float]], int]:
         """Constant, powers and cleared base of a concentration."""
         stream = self.streams[g]
         if stream.phase == "liquid" and analysis.removed:
@@ -513,7 +520,9 @@ class ReadingWriter:
                 (self.further_base(g, PRESSURE), 1.0),
                 (self.further_base(g, TEMPERATURE), -1.0),
             ]
-            return 1 / (stream.compressibility * GAS_CONSTANT), powers, sample
+            z = analysis.compressibility
+            z = stream.compressibility if z is None else z
+            return 1 / (z * GAS_CONSTANT), powers, sample
         volume = self.further_base(g, VOLUME)
         powers = [(volume, -1.0)]
         if analysis.removed:
