@@ -266,6 +266,11 @@ NOTES: dict[str, Entry] = {
         "An equation of state has a liquid form out of the gas (of the feed or at equilibrium),"
         " which the answer takes as one phase. Check temperature and pressure.",
     ),
+    "compressibility-found": Entry(
+        "Z of a gas found with the account",
+        "A reading of a gas counts by its Z, which follows from the composition by the gas model."
+        " The uncertainties take it as exact.",
+    ),
     "no-redundancy": Entry(
         "No redundancy",
         "The readings just suffice: none of them is checked by the others.",

@@ -622,6 +622,17 @@ _REACTORS: dict[str, Entry] = {
         "The size is an integral that could not be computed to its tolerance. Check the rate law"
         " for values beyond sense.",
     ),
+    "not-a-gas": Entry(
+        "Not a gas by the equation of state",
+        "At this temperature, pressure and composition the gas model has a liquid only, or no one"
+        " gas that fills the volume. Correct them, declare the phase of what is condensed, or state"
+        " the compressibility.",
+    ),
+    "gas-not-converged": Entry(
+        "No Z was found that agrees with the account",
+        "Z by the gas model and the composition that readings have by it do not come to rest. State"
+        " the compressibility.",
+    ),
     "root-not-bracketed": Entry(
         "Solution not enclosed",
         "An equation has no solution in the range in which one was expected. Check the request for"

@@ -23,11 +23,13 @@ from core.outlet_analysis.monte_carlo import (
 )
 from core.outlet_analysis.space_time_yield import ReactorSize, SizeBasis
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.equation import KnownGas
 from core.streams.known import Conditions
 from core.streams.metered import Measurement, MeteredStream
 from schemas.edge import EdgeMap, Json, RequestReader
-from schemas.feed import is_batch, read_conditions
+from schemas.feed import is_batch, known_gas, read_conditions
 from schemas.fields import Choice, List, Map, Number, Quantity, Text, describe
+from schemas.gas_model import GasReader, gas_model, interactions
 from schemas.quantities import clip
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
@@ -184,6 +186,8 @@ class ConversionRequest(AccountSchema):
         metadata=describe("Its size; the answer then gives the space-time yields."),
     )
     yields = fields.Nested(YieldsSchema)
+    gas_model = gas_model()
+    interactions = interactions()
     uncertainty = fields.Nested(UncertaintySchema)
     correlations = List(
         fields.Nested(CorrelationSchema),
@@ -218,6 +222,8 @@ class ConversionQuestion:
         What space-time yields count by, where stated.
     sampling : Sampling or None
         Where uncertainty is to be carried through by draws.
+    gas : KnownGas or None
+        The gas model, where it is not ideal.
     """
 
     problem: AccountProblem
@@ -229,6 +235,7 @@ class ConversionQuestion:
     stream_ids: tuple[str, ...]
     size: ReactorSize | None
     sampling: Sampling | None = None
+    gas: KnownGas | None = None
 
 
 def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
@@ -238,18 +245,33 @@ def read(document: Any) -> tuple[ConversionQuestion, EdgeMap]:
     ------
     ShapeError, MeaningError
     """
-    return read_request(_REQUEST, document, ("feed", "outlet", *AROUND), read_question)
+    return read_request(_REQUEST, document, ("feed", "outlet", *AROUND), _read_with_gas)
+
+
+def _read_with_gas(
+    request: Json, reader: RequestReader, reactions: ReactionSet
+) -> ConversionQuestion | None:
+    return read_question(request, reader, reactions, GasReader.of(request, reader, reactions))
 
 
 def read_question(
-    request: Json, reader: RequestReader, reactions: ReactionSet
+    request: Json,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    models: GasReader | None = None,
 ) -> ConversionQuestion | None:
-    """Return the question of a request that states readings of feed and outlet."""
+    """Return the question of a request that states readings of feed and outlet.
+
+    What Z is not stated is found by the gas model that ``models`` reads.
+    """
     key = read_key(request, reader, reactions)
+    real = models is not None and models.real
     recycled = _check_recycle(request, reader)
+    if real:
+        _check_gas(request, reader)
     sides: Mapping[str, Side] = RECYCLED if recycled else PLAIN
     batch = any(is_batch(request[name]) for name in sides if name in request)
-    readings = StreamReader(reader, reactions, batch)
+    readings = StreamReader(reader, reactions, batch, real=real)
     streams: dict[str, tuple[MeteredStream, ...]] = {}
     conditions: dict[str, Conditions | None] = {}
     ids: list[str] = []
@@ -277,11 +299,11 @@ def read_question(
         reader.at(("uncertainty",), "/uncertainty")
     if "draws" in uncertainty:
         reader.at(("uncertainty", "draws"), "/uncertainty/draws")
-    correlations = _read_correlations(
-        request.get("correlations", ()),
-        reader,
-        [stream for of in streams.values() for stream in of],
-    )
+    every = [stream for of in streams.values() for stream in of]
+    correlations = _read_correlations(request.get("correlations", ()), reader, every)
+    gas = None
+    if models is not None and not reader.faults:
+        gas = known_gas(models, every, reactions, [*conditions.values()])
     if reader.faults:
         return None
     problem = AccountProblem(
@@ -307,6 +329,7 @@ def read_question(
         tuple(ids),
         size,
         sampling,
+        gas,
     )
 
 
@@ -456,6 +479,27 @@ def _check_recycle(request: Json, reader: RequestReader) -> bool:
             " 'recycle' make together; several streams from outside stand in 'fresh_feed'",
         )
     return True
+
+
+def _check_gas(request: Json, reader: RequestReader) -> None:
+    """Refuse what is not computed with a gas model that is not ideal."""
+    around = [name for name in AROUND if name in request]
+    if around:
+        reader.fault(
+            "conflicting-fields",
+            "/gas_model",
+            f"found {request['gas_model']!r} beside {', '.join(map(repr, around))}; around a"
+            " reactor with recycle Z is not found by a gas model: leave the gas model out and state"
+            " 'compressibility' of each gas stream and meter, or leave the recycle out",
+        )
+    if request.get("uncertainty", {}).get("method") == "monte-carlo":
+        reader.fault(
+            "conflicting-fields",
+            "/uncertainty/method",
+            f"found 'monte-carlo' beside the gas model {request['gas_model']!r}; Z that a gas model"
+            " finds is not drawn anew: state the method 'linear', or leave the gas model out and"
+            " state 'compressibility' of each gas stream and meter",
+        )
 
 
 def _recycle(streams: Mapping[str, tuple[MeteredStream, ...]]) -> Recycle:

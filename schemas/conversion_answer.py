@@ -19,7 +19,9 @@ from core.outlet_analysis.conversion import ConversionResults, Overall
 from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
+from core.real_gas.witness import witness_of
 from core.streams.known import Conditions, in_phase, solids_taken_as_gas
+from core.substances.property_data import PACKAGED
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.conversion import ConversionQuestion
 from schemas.edge import EdgeMap, Json
@@ -30,6 +32,7 @@ from schemas.feed import (
     write_stream,
 )
 from schemas.fields import describe
+from schemas.gas_model import gas_words, write_gas
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 
 Drawn: TypeAlias = Callable[[FloatArray], FloatArray]
@@ -168,6 +171,7 @@ class ConversionResult(OpenSchema):
     extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
     inlet = fields.Nested(StreamResultSchema, required=True)
     outlet = fields.Nested(StreamResultSchema, required=True)
+    gas_model = fields.String(metadata=describe("Where it is not ideal."))
     key_consumed_by = numbers_by_name(text="Share of each consuming reaction.")
     key_produced_by = numbers_by_name(text="Share of each producing reaction, of what is consumed.")
     yields = numbers_by_name(RatioSchema, "By product, per key fed.")
@@ -229,6 +233,7 @@ class _Writer:
 
     def answer(self) -> Answer:
         found, results, account = self.found, self.results, self.found.account
+        gas = self.question.gas
         ids = [reaction.id for reaction in self.reactions.reactions]
         result: Json = {
             "conversion": self._number(results.conversion),
@@ -236,6 +241,8 @@ class _Writer:
             "inlet": self._side("feed", found.feed_flows, account.feed_map, account.inlet),
             "outlet": self._side("outlet", found.outlet_flows, account.outlet_map, account.outlet),
         }
+        if gas is not None:
+            result["gas_model"] = gas.equation.model
         for name in ("key_consumed_by", "key_produced_by"):
             shares: Uncertain | None = getattr(results, name)
             if shares is not None:
@@ -273,8 +280,9 @@ class _Writer:
             result=result,
             notes=self.edge.notes(notes),
             assumed=self.edge.notes((*self.edge.read_assumed, *defaults, *assumed)),
-            method=METHOD if draws is None else BY_DRAWS,
-            data=ATOMIC_WEIGHTS,
+            method=(METHOD if draws is None else BY_DRAWS) + gas_words(gas),
+            data=ATOMIC_WEIGHTS if gas is None else f"{ATOMIC_WEIGHTS}; {PACKAGED}",
+            properties=None if gas is None else write_gas(self.edge, gas, {}),
         )
 
     def _number(self, of: Uncertain, dimension: str = "dimensionless") -> Json | None:
@@ -353,7 +361,8 @@ class _Writer:
             metered.subject,
             metered.temperature,
             metered.pressure,
-            metered.compressibility,
+            float(metered.compressibility),
+            real=metered.real,
         )
         return self._stream(
             self.found.stream_flows(g),
@@ -389,9 +398,13 @@ class _Writer:
             temperature = None if conditions.temperature is None else conditions.temperature.value
             pressure = None if conditions.pressure is None else conditions.pressure.value
             if conditions.phase == "gas" and temperature is not None and pressure is not None:
-                total = float(flows[inside].sum())
-                volume = total * z * GAS_CONSTANT * temperature / pressure
-            if volume is None:
+                found = self._compressibility(conditions, temperature, pressure, flows)
+                if np.isfinite(found):
+                    z, total = found, float(flows[inside].sum())
+                    volume = total * z * GAS_CONSTANT * temperature / pressure
+                else:
+                    self._note(NO_GAS)
+            if volume is None and NO_GAS not in self.notes:
                 self._note(NO_CONCENTRATIONS)
         spread = self._spread(flows, forms, drawn, told)
         intervals = None
@@ -428,6 +441,23 @@ class _Writer:
             )
         of_draws = drawn(draws.z)[:, told]
         return draws.spread(every, np.column_stack([of_draws, of_draws.sum(axis=1)]))
+
+    def _compressibility(
+        self, of: Conditions, temperature: float, pressure: float, flows: FloatArray
+    ) -> float:
+        """Return Z of a gas, and remark on it; not a number where the gas model has no gas."""
+        gas, inside = self.question.gas, in_phase(self.reactions, "gas")
+        subject = of.subject
+        within = np.where(inside, np.maximum(flows, 0.0), 0.0)
+        if gas is None or not of.real:
+            witness = witness_of(self.reactions, inside.tobytes())
+            if of.compressibility == 1.0 and witness is not None:
+                remarks = witness.remarks(temperature, pressure, within, subject)
+                self.notes.extend(note for note in remarks if note not in self.notes)
+            return of.compressibility
+        told = gas.remarks(temperature, pressure, within, taken_as_ideal=False, subject=subject)
+        self.notes.extend(note for note in told if note not in self.notes)
+        return float(gas.compressibility(temperature, pressure, within))
 
     def _note(self, note: Note) -> None:
         if note not in self.notes:
@@ -578,6 +608,12 @@ NO_CONCENTRATIONS = Note(
     "concentrations-not-known",
     "a stream has concentrations where its volume is known: state temperature and pressure of a"
     " gas, volumetric flow, density or concentrations of a liquid",
+)
+NO_GAS = Note(
+    "concentrations-not-known",
+    "at its temperature and pressure the equation of state has a stream as a liquid only, so it has"
+    " no volume as a gas: correct them, or declare the phase of what is condensed under 'species'",
+    "warning",
 )
 DISTRIBUTION = Note(
     "distribution-not-told",

@@ -22,9 +22,9 @@ from core.rates.equilibrium_constant import (
     EquilibriumConstant,
 )
 from core.reactions.reaction_set import ReactionSet
-from core.real_gas.cubic import CubicEquation
-from core.real_gas.equation import KnownGas, gas_of
-from core.streams.stream import Stream, StreamPhase
+from core.real_gas.equation import KnownGas
+from core.real_gas.witness import witness_of
+from core.streams.stream import StreamPhase
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import HeatsOfReaction
 from core.thermochemistry.known_heats import known_heats, not_known
@@ -33,8 +33,8 @@ from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.equilibrium_constant import read_equilibrium_constant
 from schemas.feed import read_feed
 from schemas.fields import Choice, Number, Quantity, describe
-from schemas.gas_model import gas_model, interactions
-from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
+from schemas.gas_model import GasReader, gas_model, interactions, places
+from schemas.requests import AccountSchema, read_key, read_request
 from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
 from schemas.thermochemistry import read_heats
@@ -145,34 +145,19 @@ def _read_question(
     reader.at(("reactions",), "/reactions")
     reader.at(("feed", "compressibility"), "/feed/compressibility")
     reader.at(("hold",), "/hold")
-    reader.at(("gas_model",), "/gas_model")
+    models = GasReader.of(request, reader, reactions)
     at = _read_conditions(request.get("at", {}), reader)
     over, values = _read_sweep(request, reader)
-    interactions = _read_interactions(request, reader, reactions)
     if feed is None or constants is None or len(reader.faults):
         return None
-    places = _places(reader, reactions)
-    gas = None
-    if request["gas_model"] != "ideal":
-        if phase != "gas":
-            reader.fault("field-not-used", "/gas_model", "the feed is a liquid; leave it out")
-            return None
-        try:
-            gas = gas_of(
-                request["gas_model"], reactions, feed.stream.in_phase, places, interactions
-            )
-        except Refused as refused:
-            reader.collect(refused)
-            return None
-    elif interactions:
-        reader.fault(
-            "field-not-used",
-            "/interactions",
-            "an ideal gas has none; name a gas model, or leave them out",
-        )
+    if models.real and phase != "gas":
+        models.no_gas()
         return None
-    witness = _witness(reactions, feed.stream) if gas is None else None
-    thermal = _read_properties(request, reader, reactions, phase, places)
+    gas = models.known(feed.stream.in_phase)
+    witness = None
+    if gas is None and phase == "gas":
+        witness = witness_of(reactions, feed.stream.in_phase.tobytes())
+    thermal = _read_properties(request, reader, reactions, phase, places(reader, reactions))
     if len(reader.faults):
         return None
     problem = FeedAtEquilibrium(
@@ -182,7 +167,7 @@ def _read_question(
         constants=constants,
         hold=request["hold"],
         equation=None if gas is None else gas.equation,
-        witness=witness,
+        witness=None if witness is None else witness.gas.equation,
         properties=None if thermal is None else thermal[0],
         heats=None if thermal is None else thermal[1],
         over=over,
@@ -318,59 +303,6 @@ def _read_sweep(request: Json, reader: RequestReader) -> tuple[Over | None, Floa
         )
     spaced = np.geomspace if said["spacing"] == "logarithmic" else np.linspace
     return over, spaced(low, high, int(said["points"]))
-
-
-def _read_interactions(
-    request: Json, reader: RequestReader, reactions: ReactionSet
-) -> dict[tuple[int, int], float]:
-    found: dict[tuple[int, int], float] = {}
-    for k, said in enumerate(request.get("interactions", ())):
-        places = []
-        for m, name in enumerate(said["between"]):
-            i = reactions.find(name)
-            if i is None and reactions is not NOTHING_KNOWN:
-                reader.fault(
-                    "unknown-substance",
-                    child("/interactions", k, "between", m),
-                    f"found {name!r}; the substances of this request are"
-                    f" {', '.join(reactions.names)}",
-                )
-            elif i is not None:
-                places.append(i)
-        if len(places) < 2:
-            continue
-        pair = (min(places), max(places))
-        if pair[0] == pair[1] or pair in found:
-            reader.fault(
-                "conflicting-fields",
-                child("/interactions", k, "between"),
-                "a pair is two substances, and each pair stands once",
-            )
-        found[pair] = said["parameter"]
-    return found
-
-
-def _places(reader: RequestReader, reactions: ReactionSet) -> Callable[[str], Subject]:
-    def place(name: str) -> Subject:
-        declared: Subject = ("species", name)
-        return declared if declared in reader.places else ("substances", name)
-
-    for name in reactions.names:
-        if ("species", name) not in reader.places and ("substances", name) not in reader.places:
-            reader.at(("substances", name), "/reactions")
-    return place
-
-
-def _witness(reactions: ReactionSet, feed: Stream) -> CubicEquation | None:
-    """Return an equation of state to judge an ideal gas by, where all its constants are known."""
-    if feed.phase != "gas":
-        return None
-    try:
-        return gas_of(
-            "peng-robinson", reactions, feed.in_phase, lambda name: ("species", name)
-        ).equation
-    except Refused:
-        return None
 
 
 def _read_properties(

@@ -34,11 +34,11 @@ from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
 from schemas.fields import Map, describe
-from schemas.gas_model import EQUATIONS
+from schemas.gas_model import gas_words, write_gas
 from schemas.page import Curve, Page, Plot, told
 from schemas.results import OpenSchema, TableSchema, envelope, number, numbers_by_name
 from schemas.table import Table
-from schemas.thermochemistry import write_critical, write_sources
+from schemas.thermochemistry import write_sources
 from schemas.units import find_unit, spell
 
 
@@ -382,17 +382,11 @@ class _Writer:
         if self.problem.properties is not None and self.reached.heat is not None:
             used = {p.substance: used.get(p.substance, p) for p in self.problem.properties} | used
         told = write_sources(self.edge, used.values())
-        if self.question.gas is not None:
-            for name, (entry, constants) in self.question.gas.constants.items():
-                told.setdefault(name, {"phase": "gas"}).update(
-                    write_critical(self.edge, entry, constants)
-                )
-        return told
+        gas = self.question.gas
+        return told if gas is None else write_gas(self.edge, gas, told)
 
     def _gas_words(self) -> str:
-        if self.question.gas is None:
-            return ""
-        return f"; fugacities and volumes by {EQUATIONS[self.question.gas_model]}"
+        return gas_words(self.question.gas, "fugacities and volumes")
 
     def _sweep(self) -> Table:
         """Return the states of the sweep, a row each; None where there is no answer."""

@@ -12,10 +12,12 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Note, Refused, Subject
 from core.outlet_analysis.feed import KnownFeed, known_feed
 from core.reactions.reaction_set import ReactionSet
-from core.streams.known import Conditions
+from core.real_gas.equation import KnownGas
+from core.streams.known import Conditions, in_phase
 from core.streams.metered import MeteredStream
 from core.streams.stream import Stream
 from schemas.edge import EdgeMap, Json, RequestReader
+from schemas.gas_model import GasReader
 from schemas.results import OpenSchema, number, numbers_by_name
 from schemas.shape import child
 from schemas.streams import StreamReader
@@ -49,24 +51,36 @@ def is_batch(document: Json) -> bool:
 
 
 def read_feed(
-    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, key: int
+    document: Json,
+    pointer: str,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    key: int,
+    models: GasReader | None = None,
 ) -> KnownFeed | None:
     """Return the feed as one stream of known flows; None after a fault.
 
-    A feed given by an analysis is the account that fits its readings best.
+    A feed given by an analysis is the account that fits its readings best. What
+    Z is not stated is found by the gas model that ``models`` reads.
     """
     subject: Subject = ("feed",)
     reader.at(subject, pointer)
     batch = is_batch(document)
     kept = len(reader.faults)
     analysed = any("analysis" in stream for stream in document.get("streams", (document,)))
-    readings = StreamReader(reader, reactions, batch, weighed=analysed)
+    real = models is not None and models.real
+    readings = StreamReader(reader, reactions, batch, weighed=analysed, real=real)
     streams = readings.metered(document, pointer, subject, "feed")
     conditions = read_conditions(readings, document, pointer, subject, streams, one_phase=True)
     if len(reader.faults) > kept or conditions is None or key < 0:
         return None
+    gas = None
+    if models is not None and models.real:
+        gas = known_gas(models, streams, reactions, [conditions])
+        if gas is None:
+            return None
     try:
-        known = known_feed(reactions, key, streams, conditions, batch=batch)
+        known = known_feed(reactions, key, streams, conditions, batch=batch, gas=gas)
     except Refused as refused:
         reader.collect(refused)
         return None
@@ -84,6 +98,33 @@ def read_feed(
             )
         )
     return known
+
+
+def known_gas(
+    models: GasReader,
+    streams: Sequence[MeteredStream],
+    reactions: ReactionSet,
+    sums: Sequence[Conditions | None],
+) -> KnownGas | None:
+    """Return the gas model of the gases among streams and their sums; None if ideal, or refused."""
+    if not models.real:
+        return None
+    inside = in_phase(reactions, "gas")
+    if any(of is not None and of.phase == "gas" for of in (*streams, *sums)):
+        # What an analysis of a gas reads is in it, whatever is said of its phase.
+        read = [
+            i
+            for stream in streams
+            if stream.phase == "gas"
+            for analysis in stream.analyses
+            for component in analysis.components
+            for i in component.weights
+        ]
+        inside = inside.copy()
+        inside[read] = True
+        return models.known(inside)
+    models.no_gas()
+    return None
 
 
 def read_conditions(
@@ -105,7 +146,12 @@ def read_conditions(
             return None
         (stream,) = streams
         return Conditions(
-            stream.phase, subject, stream.temperature, stream.pressure, stream.compressibility
+            stream.phase,
+            subject,
+            stream.temperature,
+            stream.pressure,
+            document.get("compressibility", 1.0),
+            real=stream.real,
         )
     phases = {stream.phase for stream in streams}
     mixed = len(phases) > 1
@@ -132,7 +178,8 @@ def read_conditions(
         subject=subject,
         temperature=readings.condition(document, "temperature", pointer, subject),
         pressure=readings.condition(document, "pressure", pointer, subject),
-        compressibility=document["compressibility"],
+        compressibility=document.get("compressibility", 1.0),
+        real=readings.real and phase == "gas" and "compressibility" not in document,
         volumetric_flow=readings.volume(document, pointer, subject, volume),
         density=readings.density(document, pointer, subject, phase),
     )

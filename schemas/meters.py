@@ -39,7 +39,10 @@ class DesignSchema(ClosedSchema):
     compressibility = Number(
         at_least=0.01,
         at_most=10,
-        metadata=describe("Z of the design gas; stated with that at the meter.", default=1.0),
+        metadata=describe(
+            "Z of the design gas; stated with that at the meter, and beside a gas model.",
+            default=1.0,
+        ),
     )
 
 
@@ -59,7 +62,10 @@ class MeterSchema(ClosedSchema):
     compressibility = Number(
         at_least=0.01,
         at_most=10,
-        metadata=describe("Z of the gas at the meter.", default=1.0),
+        metadata=describe(
+            "Z of the gas at the meter, in place of that by a gas model; left out: by the gas"
+            " model, 1 of an ideal gas."
+        ),
     )
     design = fields.Nested(
         DesignSchema,
@@ -95,12 +101,15 @@ class Meter:
     shared : tuple of (Instrument, float)
         What they share with other readings, relative to the flow: too hot a
         meter makes too little of it.
+    at_meter : (float, float) or None
+        K and Pa, where Z of the gas there is open; the others are for Z = 1 then.
     """
 
     molar_volume: float | None
     design: DesignDensity | None
     u_rel: float
     shared: tuple[tuple[Instrument, float], ...]
+    at_meter: tuple[float, float] | None = None
 
 
 def _on_flow(
@@ -120,10 +129,14 @@ Condition = Callable[[Json, str, str, Subject], Measurement | None]
 
 @dataclass
 class MeterReader:
-    """Reads the meter of a gas flow; ``condition`` reads a temperature or a pressure."""
+    """Reads the meter of a gas flow; ``condition`` reads a temperature or a pressure.
+
+    ``real`` says that Z which is not stated is to be found by a gas model.
+    """
 
     reader: RequestReader
     condition: Condition
+    real: bool = False
 
     def meter(
         self, document: Json, pointer: str, subject: Subject, phase: StreamPhase, kind: FlowKind
@@ -146,7 +159,16 @@ class MeterReader:
             return self._plain(stated, place, about, kind)
         design, where = stated["design"], child(place, "design")
         compensated = set(stated.get("compensated", ()))
-        if ("compressibility" in stated) != ("compressibility" in design):
+        open_z = self.real and "compressibility" not in stated
+        if open_z and "compressibility" not in design:
+            self.reader.fault(
+                "field-needed",
+                child(where, "compressibility"),
+                "beside a gas model Z at the meter follows, and it counts by its ratio to that of"
+                " the design: state the one that the scale was made for (1 where it was made for"
+                " an ideal gas), or the compressibility at the meter as well",
+            )
+        elif not open_z and ("compressibility" in stated) != ("compressibility" in design):
             lacking = where if "compressibility" in stated else place
             self.reader.fault(
                 "field-needed",
@@ -163,6 +185,8 @@ class MeterReader:
             of_design = self._constant(design, name, where, (*about, "design"), needed=open_)
             needed = open_ or kind == "volume"
             actual = self._actual(stated, name, place, about, needed=needed)
+            if open_z and not needed:
+                at_meter[name] = self._for_model(stated, name, place, about)
             if actual is None:
                 continue
             at_meter[name] = actual.value
@@ -196,7 +220,8 @@ class MeterReader:
         if kind == "volume":
             z = stated.get("compressibility", 1.0)
             molar_volume = z * GAS_CONSTANT * at_meter["temperature"] / at_meter["pressure"]
-        return Meter(molar_volume, DesignDensity(molar_mass, ratio), *_on_flow(counting))
+        of_model = (at_meter["temperature"], at_meter["pressure"]) if open_z else None
+        return Meter(molar_volume, DesignDensity(molar_mass, ratio), *_on_flow(counting), of_model)
 
     def _plain(self, stated: Json, place: str, about: Subject, kind: FlowKind) -> Meter | None:
         """Return a meter that counts volume at its own conditions, and needs no correction."""
@@ -222,7 +247,26 @@ class MeterReader:
             return None
         z: float = stated.get("compressibility", 1.0)
         molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
-        return Meter(molar_volume, None, *_on_flow([(temperature, 1.0), (pressure, -1.0)]))
+        open_z = self.real and "compressibility" not in stated
+        of_model = (temperature.value, pressure.value) if open_z else None
+        return Meter(
+            molar_volume, None, *_on_flow([(temperature, 1.0), (pressure, -1.0)]), of_model
+        )
+
+    def _for_model(self, stated: Json, name: str, place: str, about: Subject) -> float:
+        """Return a temperature or pressure that counts in Z alone; not a number after a fault."""
+        if name not in stated:
+            self.reader.fault(
+                "field-needed",
+                child(place, name),
+                f"Z at the meter by the gas model hangs on the {name} there: state it, or the"
+                " compressibility at the meter",
+            )
+            return math.nan
+        found = self.reader.quantity(
+            stated[name], child(place, name), (*about, name), name, above=0
+        )
+        return math.nan if found is None else found.value
 
     def _actual(
         self, stated: Json, name: str, place: str, about: Subject, *, needed: bool = True

@@ -16,6 +16,7 @@ from core.mole_account.stoichiometric_table import (
     TableProblem,
 )
 from core.reactions.reaction_set import ReactionSet
+from core.substances.property_data import PACKAGED
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.edge import EdgeMap, Json, RequestReader
 from schemas.feed import (
@@ -27,6 +28,7 @@ from schemas.feed import (
     write_stream,
 )
 from schemas.fields import Choice, List, Map, Number, Quantity, describe
+from schemas.gas_model import GasReader, gas_model, gas_words, interactions, write_gas
 from schemas.requests import NOTHING_KNOWN, AccountSchema, read_key, read_request
 from schemas.results import NumberSchema, OpenSchema, envelope, number, numbers_by_name
 from schemas.shape import ClosedSchema, child
@@ -41,7 +43,14 @@ class OutletConditionsSchema(ClosedSchema):
 
     temperature = Quantity(metadata=describe("", examples=["600 degC"]))
     pressure = Quantity(metadata=describe("", examples=["0.22 barg"]))
-    compressibility = Number(at_least=0.01, at_most=10, metadata=describe("Z of a gas."))
+    compressibility = Number(
+        at_least=0.01,
+        at_most=10,
+        metadata=describe(
+            "Z of a gas, in place of that by a gas model; left out: by the gas model, else that of"
+            " the feed."
+        ),
+    )
 
 
 class StoichiometricTableRequest(AccountSchema):
@@ -68,6 +77,8 @@ class StoichiometricTableRequest(AccountSchema):
         "pressure",
         metadata=describe("What a batch of gas keeps. Batches only.", default="volume"),
     )
+    gas_model = gas_model()
+    interactions = interactions()
 
 
 _REQUEST = StoichiometricTableRequest()
@@ -89,7 +100,8 @@ def _read_problem(
 ) -> tuple[TableProblem, bool] | None:
     """Return the problem, and whether it is kept per mole of key fed."""
     key = read_key(request, reader, reactions)
-    feed = read_feed(request["feed"], "/feed", reader, reactions, key)
+    models = GasReader.of(request, reader, reactions)
+    feed = read_feed(request["feed"], "/feed", reader, reactions, key, models)
     inlet = None if feed is None else feed.stream
     outlet = _read_outlet(request.get("outlet", {}), reader)
     batch = is_batch(request["feed"])
@@ -104,6 +116,7 @@ def _read_problem(
         inlet=inlet,
         outlet=outlet,
         hold=request.get("hold", "volume"),
+        gas=feed.gas if inlet.phase == "gas" else None,
         **asked,
     )
     return problem, feed.per_mole_of_key
@@ -229,6 +242,7 @@ class StoichiometricTableResult(OpenSchema):
     delta = number("For one reaction.")
     epsilon = number("For one reaction in a gas; over the substances of the gas.")
     key_mole_fraction = number("Of the feed's own phase.")
+    gas_model = fields.String(metadata=describe("Where it is not ideal."))
     species = numbers_by_name(SpeciesRoleSchema, required=True)
     inlet = fields.Nested(StreamResultSchema, required=True)
     states = fields.List(fields.Nested(StateSchema), required=True)
@@ -258,6 +272,9 @@ def write(table: StoichiometricTable, edge: EdgeMap) -> Answer:
         result["epsilon"] = _plain(table.epsilon)
     if table.key_mole_fraction is not None:
         result["key_mole_fraction"] = _plain(table.key_mole_fraction)
+    gas = problem.gas
+    if gas is not None:
+        result["gas_model"] = gas.equation.model
     result["species"] = _species(table)
     result["inlet"] = write_known_stream(edge, names, problem.inlet)
     result["states"] = _states(table, edge)
@@ -273,8 +290,9 @@ def write(table: StoichiometricTable, edge: EdgeMap) -> Answer:
         result=result,
         notes=edge.notes((*edge.read_notes, *table.notes)),
         assumed=edge.notes((*edge.read_assumed, *table.assumed)),
-        method=METHOD,
-        data=ATOMIC_WEIGHTS,
+        method=METHOD + gas_words(gas),
+        data=ATOMIC_WEIGHTS if gas is None else f"{ATOMIC_WEIGHTS}; {PACKAGED}",
+        properties=None if gas is None else write_gas(edge, gas, {}),
         table=lambda: _table(table, edge),
     )
 
@@ -318,6 +336,7 @@ def _states(table: StoichiometricTable, edge: EdgeMap) -> list[Json]:
         }
 
     written = []
+    z = states.compressibility
     for k, conversion in enumerate(states.conversions.tolist()):
         state: Json = {"conversion": edge.number(conversion, "dimensionless")}
         extents = None if states.extents is None else states.extents[k]
@@ -338,7 +357,7 @@ def _states(table: StoichiometricTable, edge: EdgeMap) -> list[Json]:
             volume=None if volumes is None else float(volumes[k]),
             temperature=states.temperature,
             pressure=None if pressures is None else float(pressures[k]),
-            compressibility=states.compressibility,
+            compressibility=z if isinstance(z, float) else float(z[k]),
             fractions=not inlet.solvent_unknown,
         )
         state["constant_flow_error"] = _plain(float(states.constant_flow_error[k]))

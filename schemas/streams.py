@@ -53,7 +53,12 @@ class MeteredStreamSchema(ClosedSchema):
         metadata=describe("Of the stream; gives a gas its concentrations.", examples=["24 barg"])
     )
     compressibility = Number(
-        at_least=0.01, at_most=10, load_default=1.0, metadata=describe("Z of a gas.")
+        at_least=0.01,
+        at_most=10,
+        metadata=describe(
+            "Z of a gas, in place of that by a gas model; left out: by the gas model, 1 of an ideal"
+            " gas."
+        ),
     )
     flows = Map(
         Quantity(),
@@ -132,13 +137,15 @@ FORMS = (
 class StreamReader:
     """Reads streams of a request into metered streams of the core.
 
-    ``weighed`` says that their readings are to be weighed by their uncertainties.
+    ``weighed`` says that their readings are to be weighed by their uncertainties;
+    ``real`` that Z which is not stated is to be found by a gas model.
     """
 
     reader: RequestReader
     reactions: ReactionSet
     batch: bool = False
     weighed: bool = True
+    real: bool = False
     readings: Readings = field(init=False)
 
     def __post_init__(self) -> None:
@@ -152,7 +159,7 @@ class StreamReader:
     @cached_property
     def meters(self) -> MeterReader:
         """Reads the meters of the streams."""
-        return MeterReader(self.reader, self.condition)
+        return MeterReader(self.reader, self.condition, self.real)
 
     def metered(
         self, document: Json, pointer: str, subject: Subject, side: Side
@@ -249,6 +256,7 @@ class StreamReader:
             temperature=temperature,
             pressure=pressure,
             compressibility=document.get("compressibility", 1.0),
+            real=self.real and phase == "gas" and "compressibility" not in document,
             density=self.density(document, pointer, subject, phase),
         )
         return stream if len(reader.faults) == kept else None
@@ -433,7 +441,11 @@ class StreamReader:
         own = math.hypot(reading.u, meter.u_rel * reading.value)
         reading = replace(reading, u=own, shared=tuple(parts.items()))
         return replace(
-            flow, measurement=reading, molar_volume=meter.molar_volume, design=meter.design
+            flow,
+            measurement=reading,
+            molar_volume=meter.molar_volume,
+            design=meter.design,
+            at_meter=meter.at_meter,
         )
 
     def density(

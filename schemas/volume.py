@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Any
 
@@ -20,6 +21,7 @@ from core.reactions.reaction_set import ReactionSet
 from core.reactors.energetics import Energetics
 from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.sizing import Sizing, SizingProblem
+from core.real_gas.witness import witness_of
 from core.streams.stream import Stream, StreamPhase
 from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.known_heats import KnownHeats, known_heats
@@ -458,7 +460,13 @@ def write(
         result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
     of_k = _EquilibriumNotes.of(question)
     used = {p.substance: p for p in (*energetics.properties, *of_k.properties)}
-    notes = (*edge.read_notes, *sizing.notes, *of_k.notes, *energetics.notes, *_notes(feed))
+    notes = (
+        *edge.read_notes,
+        *sizing.notes,
+        *of_k.notes,
+        *energetics.notes,
+        *_notes(problem, sizing),
+    )
     assumed = (*edge.read_assumed, *of_k.assumed, *energetics.assumed, *_assumed(problem))
     return Answer(
         result=result,
@@ -554,8 +562,22 @@ def _profile(sizing: Sizing, dimension: str, edge: EdgeMap) -> Table:
     )
 
 
-def _notes(feed: Stream) -> tuple[Note, ...]:
-    return (SOLVENT_UNKNOWN, SCREENING) if feed.solvent_unknown else (SCREENING,)
+def _notes(problem: SizingProblem, sizing: Sizing) -> tuple[Note, ...]:
+    feed = problem.feed
+    if feed.solvent_unknown:
+        return (SOLVENT_UNKNOWN, SCREENING)
+    return (*_gas_notes(problem.reactions, feed, sizing.outlet), SCREENING)
+
+
+def _gas_notes(reactions: ReactionSet, *streams: Stream) -> Iterator[Note]:
+    """Say where a gas taken as ideal is not."""
+    if streams[0].phase != "gas" or streams[0].compressibility != 1.0:
+        return
+    witness = witness_of(reactions, streams[0].in_phase.tobytes())
+    for stream, subject in zip(streams, (("feed",), ("target",)), strict=True):
+        t, p = stream.temperature, stream.pressure
+        if witness is not None and t is not None and p is not None:
+            yield from witness.remarks(float(t), float(p), stream.flows, subject)
 
 
 def _assumed(problem: SizingProblem) -> list[Note]:

@@ -7,8 +7,8 @@ from typing import Any
 from flask import Blueprint
 
 from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.gases import estimate_of_gas
 from core.outlet_analysis.monte_carlo import monte_carlo
-from core.outlet_analysis.reconciliation import estimate
 from schemas import conversion as wire
 from schemas.answer import Answer
 from schemas.contract import operation
@@ -23,7 +23,7 @@ def answer(document: Any) -> Answer:
     """Return the account that fits the readings best, and what it says of the reactor."""
     question, edge = wire.read(document)
     with edge.locating():
-        found = estimate(question.problem)
+        found = estimate_of_gas(question.problem, question.gas)
         draws = None if question.sampling is None else monte_carlo(found, question.sampling)
         results = conversion_results(
             found,

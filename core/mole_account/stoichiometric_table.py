@@ -11,11 +11,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property, lru_cache
+from itertools import repeat
 from typing import Literal
 
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fault, Note, Refused, refuse
 from core.mole_account.expressions import (
     Term,
@@ -26,6 +28,8 @@ from core.mole_account.expressions import (
 )
 from core.mole_account.extent_range import ConversionRange, conversion_range
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.equation import KnownGas
+from core.real_gas.witness import witness_of
 from core.streams.stream import Stream, phase_sum
 
 Hold = Literal["volume", "pressure"]
@@ -63,6 +67,9 @@ class TableProblem:
     hold : Hold
         What a batch of gas keeps: its volume (the pressure follows) or its
         pressure. Without meaning for a flow or a liquid.
+    gas : KnownGas or None
+        By which Z follows at the outlet, where it is not stated; None: Z of the
+        inlet. That of the inlet is found already.
     """
 
     reactions: ReactionSet
@@ -72,6 +79,7 @@ class TableProblem:
     extents: FloatArray | None = None
     outlet: OutletConditions = OutletConditions()
     hold: Hold = "volume"
+    gas: KnownGas | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -91,7 +99,8 @@ class States:
         Of these substances, mol/s.
     volumetric_flows : ndarray, shape (n,), or None
         m3/s (batch: m3).
-    temperature, compressibility : float or None
+    temperature : float or None
+    compressibility : float or ndarray, shape (n,)
     pressures : ndarray, shape (n,), or None
         Pa.
     constant_flow_error : ndarray, shape (n,)
@@ -107,7 +116,7 @@ class States:
     volumetric_flows: FloatArray | None
     temperature: float | None
     pressures: FloatArray | None
-    compressibility: float
+    compressibility: float | FloatArray
     constant_flow_error: FloatArray
 
     @cached_property
@@ -258,10 +267,11 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
     Refused
         ``key-absent``, ``key-not-consumed``, ``conversion-not-enough``,
         ``conversion-out-of-reach``, ``extents-out-of-reach``,
-        ``condition-missing``, ``pressure-follows``.
+        ``condition-missing``, ``pressure-follows``, ``not-a-gas``.
     """
     reactions, key, inlet = problem.reactions, problem.key, problem.inlet
-    account = _account(reactions, key, inlet.in_phase.tobytes())
+    in_phase = inlet.in_phase.tobytes()
+    account = _account(reactions, key, in_phase)
     _check(problem, account)
     feed = inlet.flows
     reach = conversion_range(reactions, key, feed)
@@ -293,8 +303,8 @@ def stoichiometric_table(problem: TableProblem) -> StoichiometricTable:
         key_mole_fraction=share if inlet.in_phase[key] and not inlet.solvent_unknown else None,
         roles=account.roles,
         states=states,
-        fails_because=_fails_because(problem, account),
-        notes=tuple(notes),
+        fails_because=_fails_because(problem, account, states),
+        notes=(*notes, *_gas_notes(problem, states, in_phase)) if gas else tuple(notes),
         assumed=_assumed(problem),
     )
 
@@ -327,6 +337,15 @@ def _check(problem: TableProblem, account: _Account) -> None:
         )
     if inlet.phase == "gas":
         faults.extend(_unknown_conditions(problem))
+        if problem.gas is not None and inlet.volumetric_flow is None:
+            faults.append(
+                Fault(
+                    "condition-missing",
+                    ("feed",),
+                    "Z by the gas model hangs on temperature and pressure: state both of the feed,"
+                    " or leave the gas model out",
+                )
+            )
     holds_volume = inlet.batch and inlet.phase == "gas" and problem.hold == "volume"
     if holds_volume and outlet.pressure is not None:
         faults.append(
@@ -475,8 +494,8 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
             f"at such a conversion nothing is left in the {inlet.phase}; state a smaller one",
         )
     temperature = inlet.temperature if outlet.temperature is None else outlet.temperature
-    z = inlet.compressibility if outlet.compressibility is None else outlet.compressibility
-    pressures, volumes, error = _volumes(problem, phase_totals, temperature, z)
+    z, pressures = _of_gas(problem, flows, temperature)
+    pressures, volumes, error = _volumes(problem, phase_totals, temperature, z, pressures)
     unique = reactions.rank == len(reactions.reactions) or problem.extents is not None
     return States(
         conversions=changes[:, problem.key] / -float(inlet.flows[problem.key]),
@@ -493,8 +512,70 @@ def _states(problem: TableProblem, account: _Account, extents: FloatArray) -> St
     )
 
 
+def _of_gas(
+    problem: TableProblem, flows: FloatArray, temperature: float | None
+) -> tuple[float | FloatArray, FloatArray | None]:
+    """Return Z of each state, and its pressure where that follows from a held volume."""
+    inlet, outlet, gas = problem.inlet, problem.outlet, problem.gas
+    if outlet.compressibility is not None:
+        return outlet.compressibility, None
+    if gas is None:
+        return inlet.compressibility, None
+    pressure = inlet.pressure if outlet.pressure is None else outlet.pressure
+    volume = inlet.volumetric_flow
+    assert temperature is not None
+    assert pressure is not None
+    assert volume is not None
+    flows = np.where(inlet.in_phase, flows, 0.0)
+    if not (inlet.batch and problem.hold == "volume"):
+        return gas.known_compressibility(temperature, pressure, flows, ("outlet",)), None
+    held = float(volume)
+    pressures = gas.pressure(temperature, held, flows, ("outlet",))
+    moles = phase_sum(flows, inlet.in_phase)
+    return pressures * held / (moles * GAS_CONSTANT * temperature), pressures
+
+
+def _gas_notes(problem: TableProblem, states: States, in_phase: bytes) -> tuple[Note, ...]:
+    """Remark on inlet and outlet of a gas."""
+    inlet, gas = problem.inlet, problem.gas
+    t0, p0, t, p = inlet.temperature, inlet.pressure, states.temperature, states.pressures
+    if t0 is None or p0 is None or t is None or p is None:
+        return ()
+    if gas is None:
+        if inlet.compressibility != 1.0 or problem.outlet.compressibility is not None:
+            return ()
+        witness = witness_of(problem.reactions, in_phase)
+        if witness is None or (
+            witness.nearly_ideal(t0, p0, inlet.flows.tolist())
+            and all(map(witness.nearly_ideal, repeat(t), p.tolist(), states.flows.tolist()))
+        ):
+            return ()
+    else:
+        witness = None
+    by = gas if witness is None else witness.gas
+    assert by is not None
+    return tuple(
+        note
+        for at, pressure, flows, subject in (
+            (t0, p0, inlet.flows, ("feed",)),
+            (t, p, states.flows, ("outlet",)),
+        )
+        for note in by.remarks(
+            at,
+            pressure,
+            np.where(inlet.in_phase, flows, 0.0),
+            taken_as_ideal=gas is None,
+            subject=subject,
+        )
+    )
+
+
 def _volumes(
-    problem: TableProblem, phase_totals: FloatArray, temperature: float | None, z: float
+    problem: TableProblem,
+    phase_totals: FloatArray,
+    temperature: float | None,
+    z: float | FloatArray,
+    pressures: FloatArray | None,
 ) -> tuple[FloatArray | None, FloatArray | None, FloatArray]:
     """Return pressures, volumetric flows and the error of taking the latter as constant."""
     inlet, outlet = problem.inlet, problem.outlet
@@ -506,9 +587,14 @@ def _volumes(
     ratio = phase_totals / float(inlet.phase_total)
     if inlet.temperature is not None and temperature is not None:
         ratio = _times(ratio, temperature / inlet.temperature)
-    ratio = _times(ratio, z / inlet.compressibility)
+    ratio = (
+        ratio * z / inlet.compressibility
+        if isinstance(z, np.ndarray)
+        else _times(ratio, z / inlet.compressibility)
+    )
     if inlet.batch and problem.hold == "volume":
-        pressures = None if inlet.pressure is None else inlet.pressure * ratio
+        if pressures is None and inlet.pressure is not None:
+            pressures = inlet.pressure * ratio
         return pressures, _all(n, v0), np.zeros(n)
     if inlet.pressure is not None and pressure is not None:
         ratio = _times(ratio, inlet.pressure / pressure)
@@ -524,7 +610,7 @@ def _times(values: FloatArray, factor: float) -> FloatArray:
     return values if factor == 1.0 else values * factor
 
 
-def _fails_because(problem: TableProblem, account: _Account) -> tuple[str, ...]:
+def _fails_because(problem: TableProblem, account: _Account, states: States) -> tuple[str, ...]:
     inlet = problem.inlet
     if inlet.phase == "liquid" or (inlet.batch and problem.hold == "volume"):
         return ()
@@ -532,6 +618,10 @@ def _fails_because(problem: TableProblem, account: _Account) -> tuple[str, ...]:
     for name, before, after in _conditions(problem):
         if after is not None and before is not None and abs(after - before) > ROUNDING * before:
             fails.append(f"{name}-changes")
+    if problem.gas is not None and problem.outlet.compressibility is None:
+        z = inlet.compressibility
+        if (np.abs(states.compressibility - z) > ROUNDING * z).any():
+            fails.append("compressibility-changes")
     return tuple(fails)
 
 

@@ -9,10 +9,13 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.errors import Amount, Note, Subject, refuse
+from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.gases import estimate_of_gas, single_substances_metered
 from core.outlet_analysis.reconciliation import estimate_feed
 from core.outlet_analysis.remarks import ASSUMPTIONS
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.equation import KnownGas
 from core.streams.known import (
     Conditions,
     direct_flows,
@@ -41,6 +44,8 @@ class KnownFeed:
     weighed : frozenset of Subject
         Readings whose uncertainties had a say in the flows: those that other
         readings check.
+    gas : KnownGas or None
+        By which Z was found where it was not stated.
     """
 
     stream: Stream
@@ -49,6 +54,7 @@ class KnownFeed:
     assumed: tuple[Note, ...]
     notes: tuple[Note, ...] = ()
     weighed: frozenset[Subject] = frozenset()
+    gas: KnownGas | None = None
 
 
 def known_feed(
@@ -58,8 +64,11 @@ def known_feed(
     conditions: Conditions,
     *,
     batch: bool,
+    gas: KnownGas | None = None,
 ) -> KnownFeed:
     """Return the stream that metered streams make, its flows read or estimated.
+
+    What Z the streams, their meters and the conditions leave open is found by ``gas``.
 
     Raises
     ------
@@ -69,10 +78,13 @@ def known_feed(
         ``flow-negative`` where the best estimate of a flow is below zero.
     """
     if all(is_direct(stream) for stream in streams):
+        notes: tuple[Note, ...] = ()
+        if gas is not None:
+            streams, notes = single_substances_metered(streams, gas)
         each = [direct_flows(stream, reactions.molar_masses) for stream in streams]
         flows = each[0] if len(each) == 1 else np.sum(each, axis=0)
         stream, assumed = join_streams(
-            reactions, flows, streams, conditions, each=each, batch=batch
+            reactions, flows, streams, conditions, each=each, batch=batch, gas=gas
         )
         return KnownFeed(
             stream,
@@ -82,14 +94,23 @@ def known_feed(
             notes=(
                 *solids_taken_as_gas(reactions, conditions.phase),
                 *meter_notes(streams, reactions.molar_masses),
+                *notes,
             ),
+            gas=gas,
         )
-    found = estimate_feed(reactions, key, tuple(streams), batch)
-    return feed_of_account(found, conditions)
+    if gas is None:
+        found = estimate_feed(reactions, key, tuple(streams), batch)
+    else:
+        found = estimate_of_gas(AccountProblem(reactions, key, tuple(streams), (), batch), gas)
+    return feed_of_account(found, conditions, gas)
 
 
-def feed_of_account(found: Estimate, conditions: Conditions) -> KnownFeed:
+def feed_of_account(
+    found: Estimate, conditions: Conditions, gas: KnownGas | None = None
+) -> KnownFeed:
     """Return the feed of an account that was estimated, with its outlet or alone.
+
+    What Z the conditions leave open is found by ``gas``.
 
     Raises
     ------
@@ -100,7 +121,13 @@ def feed_of_account(found: Estimate, conditions: Conditions) -> KnownFeed:
     reactions, streams = problem.reactions, problem.feed
     each = _stream_flows(reactions, found, conditions)
     stream, assumed = join_streams(
-        reactions, np.sum(each, axis=0), streams, conditions, each=each, batch=problem.batch
+        reactions,
+        np.sum(each, axis=0),
+        streams,
+        conditions,
+        each=each,
+        batch=problem.batch,
+        gas=gas,
     )
     scaled = bool(found.per_mole_of_key)
     told = [note for note in found.notes if note.code != "no-redundancy"]
@@ -132,6 +159,7 @@ def feed_of_account(found: Estimate, conditions: Conditions) -> KnownFeed:
             )
             if redundancy > 1e-9
         ),
+        gas=gas,
     )
 
 

@@ -65,6 +65,8 @@ class Series:
     shared : Mapping of Instrument to float or ndarray, shape (N,)
         As :attr:`core.streams.metered.Measurement.shared`: one error all series
         long, however large its effect on each sample.
+    at_meter : (ndarray, ndarray), each of shape (N,), or None
+        ``at_meter`` of the reading, where it varies; both are for Z = 1 then.
     """
 
     value: FloatArray
@@ -73,6 +75,7 @@ class Series:
     molar_volume: FloatArray | None = None
     density_ratio: FloatArray | None = None
     shared: Mapping[Instrument, float | FloatArray] = field(default_factory=dict)
+    at_meter: tuple[FloatArray, FloatArray] | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -492,7 +495,9 @@ class ReadingWriter:
         """Weights of the substances in an analysis: by amount, or by mass."""
         return self.masses if analysis.basis in ("mass", "mass-concentration") else self.ones
 
-    def divisor(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+    def divisor(
+        self, g: int, analysis: Analysis
+    ) -> tuple[float | FloatArray, list[tuple[int, float]], int]:
         """Constant, powers and cleared base that every value of an analysis is counted against."""
         if analysis.normalised:
             # The total of the peaks stands for whatever they were scaled by.
@@ -513,7 +518,9 @@ class ReadingWriter:
             found[substance] = share * weights[substance]
         return found
 
-    def per_volume(self, g: int, analysis: Analysis) -> tuple[float, list[tuple[int, float]], int]:
+    def per_volume(
+        self, g: int, analysis: Analysis
+    ) -> tuple[float | FloatArray, list[tuple[int, float]], int]:
         """Constant, powers and cleared base of a concentration."""
         stream = self.streams[g]
         if stream.phase == "liquid" and analysis.removed:
@@ -531,7 +538,9 @@ class ReadingWriter:
                 (self.further_base(g, PRESSURE), 1.0),
                 (self.further_base(g, TEMPERATURE), -1.0),
             ]
-            return 1 / (stream.compressibility * GAS_CONSTANT), powers, sample
+            z = analysis.compressibility
+            z = stream.compressibility if z is None else z
+            return 1 / (z * GAS_CONSTANT), powers, sample
         volume = self.further_base(g, VOLUME)
         powers = [(volume, -1.0)]
         if analysis.removed:

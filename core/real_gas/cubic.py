@@ -131,6 +131,12 @@ class CubicEquation:
         k = np.zeros((size, size)) if self.interaction is None else self.interaction
         return form, root, b, form.m(self.acentric_factor), 1.0 - k
 
+    @property
+    def parameters(self) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """sqrt(a_c), Pa^(1/2) m3/mol; b, m3/mol; m; by substance, each of shape (S,)."""
+        _, root, b, m, _ = self._parameters
+        return root, b, m
+
     def _attraction(
         self, temperature: FloatArray, y: FloatArray
     ) -> tuple[FloatArray, FloatArray, FloatArray, FloatArray]:
@@ -186,6 +192,26 @@ class CubicEquation:
         dense = v < b * form.critical_z / form.factor_b
         return GasState(z, ln_phi, h, cp, np.asarray(loops & dense))
 
+    def compressibility_of_gas(
+        self, temperature: FloatArray, pressure: FloatArray, amounts: FloatArray
+    ) -> FloatArray:
+        """Return Z of mixtures that are gases, shape (N,).
+
+        That of the largest root, though a liquid were more stable: a gas a little
+        below its dew point is still a gas. Not a number where there is no gas at all.
+        Parameters as of :meth:`state`.
+        """
+        form, _, b_each, _, _ = self._parameters
+        y = amounts / amounts.sum(axis=1, keepdims=True)
+        a, _, _, _ = self._attraction(temperature, y)
+        b = y @ b_each
+        rt = GAS_CONSTANT * temperature
+        big_a, big_b = a * pressure / rt**2, b * pressure / rt
+        z, _ = _outer_roots(*_cubic(form, big_a, big_b))
+        loops = a / (b * rt) > form.factor_a / form.factor_b
+        dense = z / big_b < form.critical_z / form.factor_b
+        return np.where((z > big_b) & ~(loops & dense), z, np.nan)
+
     def pressure(
         self, temperature: FloatArray, volume: FloatArray, amounts: FloatArray
     ) -> FloatArray:
@@ -204,10 +230,7 @@ class CubicEquation:
     def _root(self, a: FloatArray, b: FloatArray) -> FloatArray:
         """Return the root Z of the cubic with the lowest Gibbs energy."""
         form = _FORMS[self.model]
-        u, w = form.d1 + form.d2, form.d1 * form.d2
-        c2, c1 = b * (u - 1) - 1, a + b * b * (w - u) - u * b
-        c0 = -(a * b + w * b * b + w * b**3)
-        high, low = _outer_roots(c2, c1, c0)
+        high, low = _outer_roots(*_cubic(form, a, b))
         span = form.d1 - form.d2
 
         def gibbs(z: FloatArray) -> FloatArray:
@@ -218,6 +241,12 @@ class CubicEquation:
         with np.errstate(invalid="ignore", divide="ignore"):
             dense = (low > b) & (low < high) & (gibbs(low) < gibbs(high))
         return np.where(dense, low, high)
+
+
+def _cubic(form: _Form, a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """Return the coefficients of Z^2, Z and 1 of the cubic whose first is 1."""
+    u, w = form.d1 + form.d2, form.d1 * form.d2
+    return b * (u - 1) - 1, a + b * b * (w - u) - u * b, -(a * b + w * b * b + w * b**3)
 
 
 def _outer_roots(c2: FloatArray, c1: FloatArray, c0: FloatArray) -> tuple[FloatArray, FloatArray]:

@@ -2,15 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
-from core.arrays import BoolArray
-from core.errors import Fault, Refused, Subject
+from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
+from core.errors import Amount, Fault, Note, Refused, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation, GasModel
+from core.real_gas.remarks import remark_on_gas
 from core.substances.property_data import CriticalConstants, Entry, critical_constants
 
 
@@ -23,10 +26,139 @@ class KnownGas:
     equation : CubicEquation
         Of the substances in the gas, in order.
     constants : Mapping from name to (Entry or None, CriticalConstants)
+    in_gas : ndarray of bool, shape (S,)
+        Which of all substances those are.
     """
 
     equation: CubicEquation
     constants: Mapping[str, tuple[Entry | None, CriticalConstants]]
+    in_gas: BoolArray
+
+    def _inside(self, flows: FloatArray) -> FloatArray:
+        # An estimate may leave a trace of less than nothing.
+        inside: FloatArray = np.maximum(flows[..., self.in_gas], 0.0)
+        return np.where(inside.sum(axis=-1, keepdims=True) > 0, inside, np.nan)
+
+    def compressibility(
+        self,
+        temperature: float | FloatArray,
+        pressure: float | FloatArray,
+        flows: FloatArray,
+    ) -> FloatArray:
+        """Return Z of a gas, shape (...); not a number where it is none.
+
+        Parameters
+        ----------
+        temperature, pressure : float or ndarray, shape (...)
+            K and Pa.
+        flows : ndarray, shape (..., S)
+            Of all substances, in any unit; those outside the gas do not count.
+        """
+        t, p, inside = self._rows(temperature, pressure, flows)
+        z = self.equation.compressibility_of_gas(t, p, inside)
+        return z.reshape(flows.shape[:-1])
+
+    def _rows(
+        self, temperature: float | FloatArray, pressure: float | FloatArray, flows: FloatArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        lead = flows.shape[:-1]
+        return (
+            np.broadcast_to(temperature, lead).reshape(-1),
+            np.broadcast_to(pressure, lead).reshape(-1),
+            self._inside(flows).reshape(-1, np.count_nonzero(self.in_gas)),
+        )
+
+    def known_compressibility(
+        self,
+        temperature: float | FloatArray,
+        pressure: float | FloatArray,
+        flows: FloatArray,
+        subject: Subject,
+    ) -> FloatArray:
+        """Return :meth:`compressibility`, shape (...).
+
+        Raises
+        ------
+        Refused
+            ``not-a-gas``.
+        """
+        z = self.compressibility(temperature, pressure, flows)
+        if not np.isfinite(z).all():
+            row = np.unravel_index(int(np.argmin(np.isfinite(z))), z.shape)
+            raise refuse(
+                "not-a-gas",
+                subject,
+                "at {temperature} and {pressure} the equation of state has this fluid as a liquid"
+                " only: correct temperature, pressure or composition, or declare the phase of what"
+                " is condensed under 'species'",
+                temperature=Amount(
+                    float(np.broadcast_to(temperature, z.shape)[row]), "temperature"
+                ),
+                pressure=Amount(float(np.broadcast_to(pressure, z.shape)[row]), "pressure"),
+            )
+        return z
+
+    def pressure(
+        self,
+        temperature: float | FloatArray,
+        volume: float | FloatArray,
+        flows: FloatArray,
+        subject: Subject,
+    ) -> FloatArray:
+        """Return the pressure of a gas in a volume, Pa, shape (...).
+
+        Parameters
+        ----------
+        temperature, volume : float or ndarray, shape (...)
+            K, and m3/s beside mol/s, or m3 beside mol.
+        flows : ndarray, shape (..., S)
+        subject : Subject
+
+        Raises
+        ------
+        Refused
+            ``not-a-gas`` where so much does not go into the volume as a gas.
+        """
+        lead = flows.shape[:-1]
+        t, v, inside = self._rows(temperature, volume, flows)
+        with np.errstate(invalid="ignore"):
+            found = self.equation.pressure(t, v, inside)
+            of_volume = found * v / (inside.sum(axis=-1) * GAS_CONSTANT * t)
+            held = np.where(found > 0, found, np.nan)
+        z = self.equation.compressibility_of_gas(t, held, inside)
+        # Inside the loop of an isotherm a volume has a pressure, and no gas that keeps it.
+        good = np.abs(z - of_volume) <= 1e-6 * of_volume
+        if not good.all():
+            row = int(np.argmin(good))
+            raise refuse(
+                "not-a-gas",
+                subject,
+                "by the equation of state {amount} do not go into {volume} at {temperature} as one"
+                " gas: part of it would be liquid. State a larger volume, a higher temperature or"
+                " less of the gas",
+                amount=Amount(float(inside[row].sum()), "amount"),
+                volume=Amount(float(v[row]), "volume"),
+                temperature=Amount(float(t[row]), "temperature"),
+            )
+        return found.reshape(lead)
+
+    def remarks(
+        self,
+        temperature: float | FloatArray,
+        pressure: float | FloatArray,
+        flows: FloatArray,
+        *,
+        taken_as_ideal: bool,
+        subject: Subject,
+    ) -> Iterator[Note]:
+        """Remark on a gas in one or several states; arguments as of :meth:`compressibility`."""
+        t, p, inside = self._rows(temperature, pressure, flows)
+        yield from remark_on_gas(
+            self.equation.compressibility_of_gas(t, p, inside),
+            would_condense(self.equation, t, p, inside),
+            taken_as_ideal=taken_as_ideal,
+            subject=subject,
+        )
 
 
 def gas_of(
@@ -80,4 +212,5 @@ def gas_of(
             between,
         ),
         found,
+        np.asarray(in_gas),
     )

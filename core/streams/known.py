@@ -13,6 +13,7 @@ from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Note, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
+from core.real_gas.equation import KnownGas
 from core.streams.metered import DesignDensity, FlowReading, Measurement, MeteredStream
 from core.streams.stream import Stream, StreamPhase, phase_sum
 
@@ -36,6 +37,8 @@ class Conditions:
     compressibility: float = 1.0
     volumetric_flow: Measurement | None = None
     density: Measurement | None = None
+    real: bool = False
+    """Z is open, to be found by a gas model."""
 
 
 def is_direct(stream: MeteredStream) -> bool:
@@ -189,6 +192,7 @@ def join_streams(
     *,
     each: Sequence[FloatArray],
     batch: bool,
+    gas: KnownGas | None = None,
 ) -> tuple[Stream, tuple[Note, ...]]:
     """Return the stream of known flows that the metered ones make together.
 
@@ -203,6 +207,8 @@ def join_streams(
     each : sequence of ndarray, shape (S,)
         Flows of each of them.
     batch : bool
+    gas : KnownGas, optional
+        By which Z is found where the conditions leave it open.
 
     Returns
     -------
@@ -216,7 +222,8 @@ def join_streams(
     Raises
     ------
     Refused
-        ``no-flow`` when nothing flows; ``volume-contradicts-conditions``.
+        ``no-flow`` when nothing flows; ``volume-contradicts-conditions``;
+        ``not-a-gas`` by the gas model.
     """
     present = in_phase(reactions, conditions.phase)
     if not sum(compress(flows.tolist(), present.tolist())) > 0:
@@ -228,13 +235,22 @@ def join_streams(
     temperature = _value(conditions.temperature)
     pressure = _value(conditions.pressure)
     volume, assumed = _volume(reactions, flows, streams, conditions, each)
+    z = conditions.compressibility
+    if not conditions.real or conditions.phase != "gas":
+        gas = None
+    within = flows if gas is None else np.where(present, flows, 0.0)
     if conditions.phase == "gas" and volume is not None and temperature is not None:
-        total = float(phase_sum(flows, present))
-        follows = conditions.compressibility * total * GAS_CONSTANT * temperature / volume
+        if gas is None:
+            total = float(phase_sum(flows, present))
+            follows = z * total * GAS_CONSTANT * temperature / volume
+        else:
+            follows = float(gas.pressure(temperature, volume, within, conditions.subject))
         _agree(conditions, follows, pressure)
         if pressure is None:
             pressure = follows
             assumed = (*assumed, _pressure_follows(follows))
+    if gas is not None and temperature is not None and pressure is not None:
+        z = float(gas.known_compressibility(temperature, pressure, within, conditions.subject))
     stream = Stream(
         flows=flows,
         in_phase=present,
@@ -242,7 +258,7 @@ def join_streams(
         batch=batch,
         temperature=temperature,
         pressure=pressure,
-        compressibility=conditions.compressibility,
+        compressibility=z,
         liquid_volumetric_flow=volume if conditions.phase == "liquid" else None,
         solvent_unknown=conditions.phase == "liquid"
         and any(

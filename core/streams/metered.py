@@ -11,6 +11,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
+from core.arrays import FloatArray
 from core.errors import Subject
 from core.records import record
 from core.streams.stream import StreamPhase
@@ -97,6 +98,9 @@ class Analysis:
     normalised : bool
         The values were scaled to 100 %: only their ratios carry information.
     subject : Subject
+    compressibility : float or ndarray, shape (N,), or None
+        Z of what was analysed, where removals make another gas of it than the
+        stream is; None: that of the stream.
     """
 
     basis: Basis
@@ -105,6 +109,7 @@ class Analysis:
     removed: tuple[Removal, ...] = ()
     balance: int | None = None
     normalised: bool = False
+    compressibility: float | FloatArray | None = None
 
 
 @dataclass(frozen=True)
@@ -136,12 +141,12 @@ class DesignDensity:
     ----------
     molar_mass : float
         M_d, kg/mol.
-    ratio : float
+    ratio : float or ndarray, shape (N,)
         r, -, without what the transmitter is compensated for.
     """
 
     molar_mass: float
-    ratio: float = 1.0
+    ratio: float | FloatArray = 1.0
 
     @staticmethod
     def of_ratio(kind: FlowKind) -> float:
@@ -168,15 +173,18 @@ class FlowReading:
     passes the meter. ``kind`` ``volume`` of a gas has its ``molar_volume``
     (m3/mol) at the meter's own conditions; without it the volume is that at the
     stream's own. ``design`` is that of a differential-pressure meter of a gas
-    which shows a flow as if the gas had its design density.
+    which shows a flow as if the gas had its design density. Where
+    ``at_meter`` says at which temperature (K) and pressure (Pa) it passes the
+    meter, Z of the gas there is open, and both are for Z = 1.
     """
 
     kind: FlowKind
     measurement: Measurement
     substance: int | None = None
     as_analysed: bool = False
-    molar_volume: float | None = None
+    molar_volume: float | FloatArray | None = None
     design: DesignDensity | None = None
+    at_meter: tuple[float, float] | None = None
 
 
 @dataclass(frozen=True)
@@ -198,7 +206,9 @@ class MeteredStream:
         with removals of its own.
     temperature, pressure : Measurement or None
         K, Pa, of the stream: they give a gas its concentrations.
-    compressibility : float
+    compressibility : float or ndarray, shape (N,)
+    real : bool
+        Z is open, to be found by the gas model of the account.
     density : Measurement or None
         kg/m3, of a liquid.
     subject : Subject
@@ -211,5 +221,6 @@ class MeteredStream:
     analyses: tuple[Analysis, ...] = ()
     temperature: Measurement | None = None
     pressure: Measurement | None = None
-    compressibility: float = 1.0
+    compressibility: float | FloatArray = 1.0
+    real: bool = False
     density: Measurement | None = None

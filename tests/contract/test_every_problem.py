@@ -738,7 +738,16 @@ case(
     "/feed",
 )
 case("no-such-temperature", (EQUILIBRIUM, BURNT), "/feed")
-
+case(
+    "not-a-gas",
+    table(
+        gas_model="peng-robinson",
+        feed__flows={"CO": "0.1 kmol/h", "H2O": "100 kmol/h"},
+        feed__temperature="300 K",
+        feed__pressure="300 bar",
+    ),
+    "/feed",
+)
 
 ELSEWHERE = {
     "not-json": "tests/service/test_bodies_and_forms.py",
@@ -759,6 +768,7 @@ ELSEWHERE = {
     "expectation-failed": "tests/live/test_server.py",
     "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
     "not-converged": "tests/core/outlet_analysis/test_solving.py",
+    "gas-not-converged": "tests/service/test_gas_models_refused.py",
     "rate-not-finite": "tests/core/reactors/test_sizing_refusals.py",
     "removed-substance-read": "tests/core/outlet_analysis/test_estimate_single.py",
     "uncertainty-out-of-range": "tests/core/outlet_analysis/test_estimate_single.py",

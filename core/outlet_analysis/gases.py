@@ -1,0 +1,372 @@
+"""Accounts of gases that are not ideal: Z of what the readings speak of, found with the account.
+
+Z of a gas hangs on its composition, which the account tells, and some readings
+count by it: volumes at a meter, volumetric flows, concentrations, flows of
+differential-pressure meters. The account is estimated with a Z for each of
+them, Z is found of the gas that it then has, and so on until it stays
+(successive substitution; Z moves little with composition). Uncertainties take
+the Z found as exact.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray
+from core.errors import Amount, Fact, Fault, Note, Refused, Subject, refuse
+from core.outlet_analysis.account import Account, AccountProblem
+from core.outlet_analysis.estimate import Estimate, ReadingTable
+from core.outlet_analysis.readings import (
+    FRACTIONS,
+    PRESSURE,
+    TEMPERATURE,
+    ReadingWriter,
+    Series,
+)
+from core.outlet_analysis.reconciliation import estimate
+from core.real_gas.equation import KnownGas
+from core.streams.metered import Analysis, FlowReading, MeteredStream
+
+SETTLED = 1e-12
+"""Relative change of every Z at which the account is taken."""
+NOISE = 1e-10
+"""And at which it is taken when no further step brings it nearer: rounding of the fit."""
+STEPS = 60
+
+
+@dataclass(frozen=True, eq=False)
+class _Gas:
+    """A gas whose Z some reading counts by.
+
+    Attributes
+    ----------
+    place : tuple
+        ``(g,)`` a stream, ``(g, k)`` what its analysis k saw of it, or ``(g,
+        subject)`` what passes the meter of a flow reading.
+    subject : Subject
+    amounts : ndarray, shape (S, T)
+        Its substances over the stream space.
+    at_meter : tuple or None
+        Temperature and pressure, each one number or (N,); None: those of the stream.
+    """
+
+    place: tuple[int | Subject, ...]
+    subject: Subject
+    amounts: FloatArray
+    at_meter: tuple[float | FloatArray, float | FloatArray] | None = None
+
+
+def estimate_of_gas(problem: AccountProblem, gas: KnownGas | None) -> Estimate:
+    """Find the account that fits the readings best, with every open Z by a gas model.
+
+    As :func:`core.outlet_analysis.reconciliation.estimate`, on one sample or on
+    a series, each sample by itself. ``account.problem`` of the estimate has the Z found.
+
+    Parameters
+    ----------
+    problem : AccountProblem
+        Its streams and meters say which Z are open.
+    gas : KnownGas or None
+        None where none is.
+
+    Raises
+    ------
+    Refused
+        As :func:`~core.outlet_analysis.reconciliation.estimate`;
+        ``not-a-gas`` where the account found has no gas there, and
+        ``gas-not-converged``. In a series such samples stand in ``failed``.
+    """
+    found = estimate(problem)
+    if gas is None:
+        return found
+    gases = list(_gases(found.account))
+    if not gases:
+        return found
+    z: FloatArray = np.ones((*found.chi_square.shape, len(gases)))
+    moved = np.full(z.shape, np.inf)
+    for _ in range(STEPS):
+        following = np.stack([_compressibility(found, gas, of) for of in gases], axis=-1)
+        # A sample that has no account, or no gas, now goes on with what it had.
+        following = np.where(np.isfinite(following), following, z)
+        before, moved = moved, np.abs(following / z - 1)
+        open_ = ~_resting(moved, before)
+        if not open_.any():
+            break
+        # What has settled stays as it is, whatever the others do.
+        z = np.where(open_[..., None], following, z)
+        found = estimate(_with_compressibility(problem, gases, z))
+    return _judged(found, gas, gases, z, moved)
+
+
+def _resting(moved: FloatArray, before: FloatArray) -> BoolArray:
+    """Whether all that still moves is the rounding of the fit, shape (...)."""
+    return np.asarray(((moved <= NOISE) & (moved >= before / 2) | (moved <= SETTLED)).all(axis=-1))
+
+
+def _judged(
+    found: Estimate, gas: KnownGas, gases: Sequence[_Gas], z: FloatArray, moved: FloatArray
+) -> Estimate:
+    """Return the estimate with what its gases are, or raise what stands against it."""
+    failed = dict(found.failed)
+    notes: list[Note] = []
+    there = np.asarray(np.isfinite(found.z).all(axis=-1))
+    for k, of in enumerate(gases):
+        is_gas = np.isfinite(_compressibility(found, gas, of))
+        settled = moved[..., k] <= NOISE
+        for marks, code, detail in (
+            (there & ~is_gas, "not-a-gas", NOT_A_GAS),
+            (there & is_gas & ~settled, "gas-not-converged", NOT_CONVERGED),
+        ):
+            for row in np.flatnonzero(marks).tolist():
+                failed.setdefault(row, _fault(found, of, row, code, detail))
+        notes += _remarks(found, gas, of, z[..., k], there & is_gas & settled)
+    if found.account.readings.samples is None and failed:
+        raise Refused(failed[0])
+    lost = sorted(set(failed) - set(found.failed))
+    if lost:
+        found = _without(found, lost)
+    return replace(found, failed=failed, notes=(*found.notes, *notes))
+
+
+NOT_A_GAS = (
+    "at {temperature} and {pressure} the equation of state has what flows here as a liquid only, or"
+    " the readings do not tell what it is; correct temperature, pressure or analysis, or state its"
+    " compressibility"
+)
+NOT_CONVERGED = (
+    "at {temperature} and {pressure} no Z was found that agrees with the composition that it leads"
+    " to; state the compressibility"
+)
+
+
+def _fault(found: Estimate, of: _Gas, row: int, code: str, detail: str) -> Fault:
+    t, p = (float(np.ravel(x)[row if np.ndim(x) else 0]) for x in _conditions(found, of))
+    facts = {"temperature": Amount(t, "temperature"), "pressure": Amount(p, "pressure")}
+    return Fault(code, of.subject, detail, facts)
+
+
+def _without(found: Estimate, rows: list[int]) -> Estimate:
+    """Return the series without numbers in samples that failed after all."""
+
+    def blank(values: Any) -> Any:
+        if not isinstance(values, np.ndarray):
+            return values
+        made = values.copy()
+        made[rows] = np.nan if made.dtype == float else 0
+        return made
+
+    table: dict[str, Any] = {name: blank(of) for name, of in vars(found.readings).items()}
+    whole: dict[str, Any] = {name: blank(of) for name, of in vars(found).items()}
+    return Estimate(**{**whole, "readings": ReadingTable(**table)})
+
+
+def _remarks(
+    found: Estimate, gas: KnownGas, of: _Gas, z: FloatArray, good: BoolArray
+) -> Iterator[Note]:
+    if not good.any():
+        return
+    low, high = float(z[good].min()), float(z[good].max())
+    facts: dict[str, Fact] = {"z": f"{low:.4f}"}
+    if high != low:
+        facts["z_most"] = f"{high:.4f}"
+    yield Note(
+        "compressibility-found",
+        "the readings here were taken with Z = {z}"
+        + (" to {z_most}" if high != low else "")
+        + ", that of the gas in the account by the equation of state; uncertainties take it as"
+        " exact",
+        "info",
+        of.subject,
+        facts,
+    )
+    t, p = (np.broadcast_to(np.asarray(x), z.shape)[good] for x in _conditions(found, of))
+    yield from gas.remarks(
+        t, p, _amounts(found, of)[good], taken_as_ideal=False, subject=of.subject
+    )
+
+
+def _gases(account: Account) -> Iterator[_Gas]:
+    """Yield the gases whose open Z some reading counts by."""
+    writer = account.writer
+    for g, stream in enumerate(account.streams):
+        if stream.phase != "gas":
+            continue
+        if stream.real and writer.has_conditions(g):
+            per_volume = [
+                (k, of)
+                for k, of in enumerate(stream.analyses)
+                if of.basis not in FRACTIONS and not of.normalised
+            ]
+            volumes = any(
+                flow.kind == "volume" and flow.molar_volume is None for flow in stream.flows
+            )
+            if volumes or any(not of.removed for _, of in per_volume):
+                yield _Gas((g,), stream.subject, _of_stream(writer, g, None))
+            for k, of in per_volume:
+                if of.removed:
+                    yield _Gas((g, k), of.subject, _of_stream(writer, g, of))
+        for reading in stream.flows:
+            if reading.at_meter is not None:
+                series = writer.series.get(reading.measurement.subject)
+                at = None if series is None else series.at_meter
+                yield _Gas(
+                    (g, reading.measurement.subject),
+                    reading.measurement.subject,
+                    _at_meter(writer, g, reading),
+                    reading.at_meter if at is None else at,
+                )
+
+
+def _of_stream(writer: ReadingWriter, g: int, analysis: Analysis | None) -> FloatArray:
+    """Return the substances of a gas, as far as an analysis saw it, over the stream space."""
+    rows = []
+    for i in range(writer.count):
+        weights = np.zeros(writer.count)
+        weights[i] = writer.own[g][i]
+        if analysis is not None:
+            weights = writer.sampled(g, weights, analysis)
+        rows.append(writer.flows(g, weights))
+    return np.array(rows)
+
+
+def _at_meter(writer: ReadingWriter, g: int, reading: FlowReading) -> FloatArray:
+    """Return the substances of what passes a meter over the stream space."""
+    if reading.substance is None:
+        return _of_stream(writer, g, writer.metered_as(g, reading))
+    rows = np.zeros((writer.count, writer.width))
+    rows[reading.substance] = writer.flows(
+        g, writer.component({reading.substance: 1.0}, writer.ones)
+    )
+    return rows
+
+
+def _amounts(found: Estimate, of: _Gas) -> FloatArray:
+    """Return the substances of a gas in the account, shape (..., S), mol/s."""
+    forms = of.amounts @ found.account.stream_map
+    open_ = ((~found.told[..., None, :]) & (forms != 0)).any(axis=-1)
+    return np.where(open_, np.nan, found.z @ forms.T)
+
+
+def _conditions(found: Estimate, of: _Gas) -> tuple[float | FloatArray, float | FloatArray]:
+    if of.at_meter is not None:
+        return of.at_meter
+    g = of.place[0]
+    assert isinstance(g, int)
+    account = found.account
+    t, p = (
+        np.asarray(found.z @ account.stream_map[account.writer.place(g, quantity)])
+        for quantity in (TEMPERATURE, PRESSURE)
+    )
+    return t, p
+
+
+def _compressibility(found: Estimate, gas: KnownGas, of: _Gas) -> FloatArray:
+    t, p = _conditions(found, of)
+    with np.errstate(invalid="ignore"):
+        return gas.compressibility(t, p, _amounts(found, of))
+
+
+def _with_compressibility(
+    problem: AccountProblem, gases: Sequence[_Gas], z: FloatArray
+) -> AccountProblem:
+    """Return the problem with the Z, shape (...) or (N, ...), put in."""
+    known: dict[tuple[int | Subject, ...], float | FloatArray] = {
+        of.place: float(z[k]) if z.ndim == 1 else z[:, k] for k, of in enumerate(gases)
+    }
+    streams = [
+        _stream_with(stream, g, known) for g, stream in enumerate((*problem.feed, *problem.outlet))
+    ]
+    feeds = len(problem.feed)
+    series = dict(problem.series)
+    for place, own in known.items():
+        subject = place[-1]
+        if isinstance(subject, tuple) and subject in series:
+            series[subject] = _series_with(series[subject], own)
+    return replace(
+        problem, feed=tuple(streams[:feeds]), outlet=tuple(streams[feeds:]), series=series
+    )
+
+
+def _stream_with(
+    stream: MeteredStream, g: int, known: Mapping[tuple[int | Subject, ...], float | FloatArray]
+) -> MeteredStream:
+    return replace(
+        stream,
+        compressibility=known.get((g,), stream.compressibility),
+        analyses=tuple(
+            replace(analysis, compressibility=known.get((g, k)))
+            for k, analysis in enumerate(stream.analyses)
+        ),
+        flows=tuple(
+            reading
+            if (g, reading.measurement.subject) not in known
+            else metered_with(reading, known[g, reading.measurement.subject])
+            for reading in stream.flows
+        ),
+    )
+
+
+def metered_with(reading: FlowReading, z: float | FloatArray) -> FlowReading:
+    """Return a flow reading with Z of the gas at its meter put in; one number or (N,)."""
+    volume, design = reading.molar_volume, reading.design
+    return replace(
+        reading,
+        molar_volume=None if volume is None else volume * z,
+        design=None if design is None else replace(design, ratio=design.ratio / z),
+    )
+
+
+def _series_with(series: Series, z: float | FloatArray) -> Series:
+    volume, ratio = series.molar_volume, series.density_ratio
+    return replace(
+        series,
+        molar_volume=None if volume is None else volume * z,
+        density_ratio=None if ratio is None else ratio / z,
+    )
+
+
+def single_substances_metered(
+    streams: Sequence[MeteredStream], gas: KnownGas
+) -> tuple[list[MeteredStream], tuple[Note, ...]]:
+    """Return streams whose meters each pass one substance with Z of it put in.
+
+    Raises
+    ------
+    Refused
+        ``not-a-gas``.
+    """
+    notes: list[Note] = []
+
+    def put(reading: FlowReading) -> FlowReading:
+        if reading.at_meter is None or reading.substance is None:
+            return reading
+        pure = np.zeros(len(gas.in_gas))
+        pure[reading.substance] = 1.0
+        if not gas.in_gas[reading.substance]:
+            raise refuse(
+                "not-a-gas",
+                reading.measurement.subject,
+                "found a meter of gas, and the one substance that passes it is not declared as a"
+                " gas; correct its phase under 'species', or state the compressibility",
+            )
+        subject = reading.measurement.subject
+        z = float(gas.known_compressibility(*reading.at_meter, pure, subject))
+        notes.append(
+            Note(
+                "compressibility-found",
+                "the readings here were taken with Z = {z}, that of the gas in the account by the"
+                " equation of state; uncertainties take it as exact",
+                "info",
+                subject,
+                {"z": f"{z:.4f}"},
+            )
+        )
+        notes.extend(gas.remarks(*reading.at_meter, pure, taken_as_ideal=False, subject=subject))
+        return metered_with(reading, z)
+
+    put_in = [replace(one, flows=tuple(map(put, one.flows))) for one in streams]
+    return put_in, tuple(notes)
