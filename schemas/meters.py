@@ -98,7 +98,7 @@ class Meter:
     u_rel : float
         Relative uncertainty that its temperature and pressure put on the flow.
     at_meter : (float, float) or None
-        K and Pa, where Z of the gas there is open; the others are for Z = 1 then.
+        K and Pa, where Z of the gas there is not stated; the others are for Z = 1 then.
     """
 
     molar_volume: float | None
@@ -233,8 +233,8 @@ class MeterReader:
         z: float = stated.get("compressibility", 1.0)
         molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
         share = math.hypot(temperature.u / temperature.value, pressure.u / pressure.value)
-        open_z = self.real and "compressibility" not in stated
-        of_model = (temperature.value, pressure.value) if open_z else None
+        stated_z = "compressibility" in stated
+        of_model = None if stated_z else (temperature.value, pressure.value)
         return Meter(molar_volume, None, share, of_model)
 
     def _for_model(self, stated: Json, name: str, place: str, about: Subject) -> float:
