@@ -102,7 +102,7 @@ class Meter:
         What they share with other readings, relative to the flow: too hot a
         meter makes too little of it.
     at_meter : (float, float) or None
-        K and Pa, where Z of the gas there is open; the others are for Z = 1 then.
+        K and Pa, where Z of the gas there is not stated; the others are for Z = 1 then.
     """
 
     molar_volume: float | None
@@ -247,8 +247,9 @@ class MeterReader:
             return None
         z: float = stated.get("compressibility", 1.0)
         molar_volume = z * GAS_CONSTANT * temperature.value / pressure.value
-        open_z = self.real and "compressibility" not in stated
-        of_model = (temperature.value, pressure.value) if open_z else None
+        of_model = None
+        if "compressibility" not in stated:
+            of_model = (temperature.value, pressure.value)
         return Meter(
             molar_volume, None, *_on_flow([(temperature, 1.0), (pressure, -1.0)]), of_model
         )

@@ -1373,6 +1373,8 @@ class Maker:
             self.corrupt(made)
             t1 = False
         self.further(made)
+        if self.gas_model(made, system):
+            t1 = False
         return made, truth if t1 and t2 else None
 
     def further(self, made: Json) -> None:
@@ -1444,6 +1446,29 @@ class Maker:
             return [(pointer, side)]
         return [(f"{pointer}/streams/{k}", one) for k, one in enumerate(side["streams"])]
 
+    def gas_model(self, made: Json, system: System) -> bool:
+        """Name a gas model now and then; what counts by volume is not true then."""
+        if not self.chance(0.3 if system.phase == "gas" else 0.03):
+            return False
+        made["gas_model"] = self.rnd.choice(["peng-robinson", "soave-redlich-kwong", "ideal"])
+        if self.chance(0.2):
+            names = [*made["feed"].get("flows", {}), "N2", "CO"]
+            made["interactions"] = [
+                {
+                    "between": [self.rnd.choice(names), self.rnd.choice(names)],
+                    "parameter": self.rnd.choice([0.1, -1, 1, 0]),
+                }
+            ]
+        meters = [made[side] for side in ("feed", "outlet") if side in made]
+        for stream in meters:
+            if "meter" in stream and self.chance(0.5):
+                stream["meter"].pop("compressibility", None)
+                stream["meter"]["pressure"] = self.rnd.choice(["2 bar", "180 bar", "1e9 Pa"])
+                stream["meter"].setdefault("temperature", "310 K")
+            if "analysis" in stream and self.chance(0.3):
+                stream["temperature"], stream["pressure"] = "350 K", "60 bar"
+        return True
+
     def corrupt(self, made: Json) -> None:
         """Put one reading wrong: a gross error."""
         readings = [
@@ -1505,6 +1530,7 @@ class Maker:
             ):
                 if self.chance(0.5):
                     made["outlet"][name] = self.rnd.choice(values)
+        self.gas_model(made, system)
         return made, None
 
     def correlation(self, unit: str) -> Json:

@@ -11,7 +11,7 @@ from core.arrays import FloatArray
 from core.errors import Amount, Note, Subject, refuse
 from core.outlet_analysis.account import AccountProblem
 from core.outlet_analysis.estimate import Estimate
-from core.outlet_analysis.gases import estimate_of_gas, single_substances_metered
+from core.outlet_analysis.gases import estimate_of_gas, judged_as_ideal, single_substances_metered
 from core.outlet_analysis.reconciliation import estimate_feed
 from core.outlet_analysis.remarks import ASSUMPTIONS
 from core.reactions.reaction_set import ReactionSet
@@ -99,7 +99,7 @@ def known_feed(
             gas=gas,
         )
     if gas is None:
-        found = estimate_feed(reactions, key, tuple(streams), batch)
+        found = judged_as_ideal(estimate_feed(reactions, key, tuple(streams), batch))
     else:
         found = estimate_of_gas(AccountProblem(reactions, key, tuple(streams), (), batch), gas)
     return feed_of_account(found, conditions, gas)

@@ -3,9 +3,10 @@
 Z of a gas hangs on its composition, which the account tells, and some readings
 count by it: volumes at a meter, volumetric flows, concentrations, flows of
 differential-pressure meters. The account is estimated with a Z for each of
-them, Z is found of the gas that it then has, and so on until it stays
-(successive substitution; Z moves little with composition). Uncertainties take
-the Z found as exact.
+them, at first that of the gas as its own readings have it; Z is found of the
+gas that the account then has, and so on until it stays (successive
+substitution, by the secant of each Z from the second step on; Z moves little
+with composition). Uncertainties take the Z found as exact.
 """
 
 from __future__ import annotations
@@ -17,8 +18,9 @@ from typing import Any
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
+from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Fault, Note, Refused, Subject, refuse
-from core.outlet_analysis.account import Account, AccountProblem
+from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.estimate import Estimate, ReadingTable
 from core.outlet_analysis.readings import (
     FRACTIONS,
@@ -29,13 +31,18 @@ from core.outlet_analysis.readings import (
 )
 from core.outlet_analysis.reconciliation import estimate
 from core.real_gas.equation import KnownGas
+from core.real_gas.remarks import NEARLY_IDEAL
+from core.real_gas.witness import witness_of
+from core.streams.known import in_phase
 from core.streams.metered import Analysis, FlowReading, MeteredStream
 
 SETTLED = 1e-12
 """Relative change of every Z at which the account is taken."""
 NOISE = 1e-10
 """And at which it is taken when no further step brings it nearer: rounding of the fit."""
-STEPS = 60
+STEPS = 20
+STEEPEST = 0.7
+"""Change of Z by the account over that put in, beyond which the secant is not trusted."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -80,14 +87,18 @@ def estimate_of_gas(problem: AccountProblem, gas: KnownGas | None) -> Estimate:
         ``not-a-gas`` where the account found has no gas there, and
         ``gas-not-converged``. In a series such samples stand in ``failed``.
     """
-    found = estimate(problem)
     if gas is None:
-        return found
-    gases = list(_gases(found.account))
+        return judged_as_ideal(estimate(problem))
+    account = build_account(problem)
+    gases = list(_gases(account))
     if not gases:
-        return found
-    z: FloatArray = np.ones((*found.chi_square.shape, len(gases)))
+        return estimate(problem)
+    z = np.stack([_guess(account, gas, of) for of in gases], axis=-1)
+    if account.readings.samples is None:
+        z = z[0]
+    found = estimate(_with_compressibility(problem, gases, z))
     moved = np.full(z.shape, np.inf)
+    last: tuple[FloatArray, FloatArray] | None = None
     for _ in range(STEPS):
         following = np.stack([_compressibility(found, gas, of) for of in gases], axis=-1)
         # A sample that has no account, or no gas, now goes on with what it had.
@@ -97,9 +108,45 @@ def estimate_of_gas(problem: AccountProblem, gas: KnownGas | None) -> Estimate:
         if not open_.any():
             break
         # What has settled stays as it is, whatever the others do.
-        z = np.where(open_[..., None], following, z)
+        stepped = np.where(open_[..., None], _step(z, following, last), z)
+        last, z = (z, following), stepped
         found = estimate(_with_compressibility(problem, gases, z))
     return _judged(found, gas, gases, z, moved)
+
+
+def _step(
+    z: FloatArray, following: FloatArray, last: tuple[FloatArray, FloatArray] | None
+) -> FloatArray:
+    """Return the Z to take next: by the secant of each, as far as that is a small correction."""
+    if last is None:
+        return following
+    before, after = last
+    with np.errstate(invalid="ignore", divide="ignore"):
+        slope = (following - after) / (z - before)
+        secant = z + (following - z) / (1 - slope)
+    return np.where(np.abs(slope) < STEEPEST, secant, following)
+
+
+def judged_as_ideal(found: Estimate) -> Estimate:
+    """Return an estimate with remarks on meters whose gas was taken as ideal and is not."""
+    metered = [of for of in _gases(found.account) if of.at_meter is not None]
+    if not metered:
+        return found
+    inside = in_phase(found.account.problem.reactions, "gas")
+    witness = witness_of(found.account.problem.reactions, inside.tobytes())
+    if witness is None:
+        return found
+    notes: list[Note] = []
+    for of in metered:
+        (t, p), amounts = _conditions(found, of), _amounts(found, of)
+        z = witness.gas.compressibility(t, p, amounts)
+        good = np.isfinite(z)
+        if ((z < NEARLY_IDEAL[0]) | (z > NEARLY_IDEAL[1])).any():
+            t, p = (np.broadcast_to(np.asarray(x), z.shape)[good] for x in (t, p))
+            notes += witness.gas.remarks(
+                t, p, amounts[good], taken_as_ideal=True, subject=of.subject
+            )
+    return replace(found, notes=(*found.notes, *notes))
 
 
 def _resting(moved: FloatArray, before: FloatArray) -> BoolArray:
@@ -221,6 +268,68 @@ def _gases(account: Account) -> Iterator[_Gas]:
                 )
 
 
+def _guess(account: Account, gas: KnownGas, of: _Gas) -> FloatArray:
+    """Return Z of a gas as its readings alone have it, shape (N,); 1 where they do not tell.
+
+    Not just a shorter way: by Z of an ideal gas the concentrations of a dense
+    one add up to more than there can be.
+    """
+    g, place = of.place[0], of.place[-1]
+    assert isinstance(g, int)
+    stream, readings, writer = account.streams[g], account.readings, account.writer
+    samples, masses = len(readings.measured), writer.masses
+    t, p = (np.full(samples, np.nan) for _ in range(2))
+    conditions = of.at_meter
+    if conditions is None:
+        assert stream.temperature is not None
+        assert stream.pressure is not None
+        t_read, p_read = (
+            one.value if one.subject not in writer.series else writer.series[one.subject].value
+            for one in (stream.temperature, stream.pressure)
+        )
+        conditions = (t_read, p_read)
+    t[:], p[:] = conditions
+    amounts = np.zeros((samples, writer.count))
+    read = np.zeros(writer.count, dtype=bool)
+    metered = [flow.substance for flow in stream.flows if flow.measurement.subject == place]
+    k = place if len(of.place) > 1 and isinstance(place, int) else 0
+    if metered and metered[0] is not None:
+        amounts[:, metered[0]] = 1.0
+        return _or_ideal(gas, t, p, amounts)
+    if not stream.analyses:
+        for flow in stream.flows:
+            if flow.substance is not None:
+                by = masses[flow.substance] if flow.kind == "mass" else 1.0
+                amounts[:, flow.substance] += flow.measurement.value / by
+        return _or_ideal(gas, t, p, amounts)
+    analysis = stream.analyses[k]
+    by_mass = analysis.basis in ("mass", "mass-concentration")
+    values = np.nan_to_num(readings.measured[:, writer.places[g, k]])
+    for component, value in zip(analysis.components, values.T, strict=True):
+        for i in component.weights:
+            read[i] = True
+            amounts[:, i] += value / len(component.weights) / (masses[i] if by_mass else 1.0)
+    if analysis.basis in FRACTIONS:
+        if analysis.balance is not None:
+            rest = np.maximum(1.0 - values.sum(axis=1), 0.0)
+            amounts[:, analysis.balance] += rest / (masses[analysis.balance] if by_mass else 1.0)
+        return _or_ideal(gas, t, p, amounts)
+    others = gas.in_gas & ~read
+    others[[removal.substance for removal in analysis.removed]] = False
+    found, z = amounts, np.ones(samples)
+    for _ in range(10):
+        z = _or_ideal(gas, t, p, found)
+        rest = np.maximum(p / (z * GAS_CONSTANT * t) - amounts.sum(axis=1), 0.0)
+        found = amounts + np.where(others, rest[:, None] / max(1, np.count_nonzero(others)), 0.0)
+    return z
+
+
+def _or_ideal(gas: KnownGas, t: FloatArray, p: FloatArray, amounts: FloatArray) -> FloatArray:
+    with np.errstate(invalid="ignore"):
+        z = gas.compressibility(t, p, amounts)
+    return np.where(np.isfinite(z), z, 1.0)
+
+
 def _of_stream(writer: ReadingWriter, g: int, analysis: Analysis | None) -> FloatArray:
     """Return the substances of a gas, as far as an analysis saw it, over the stream space."""
     rows = []
@@ -246,9 +355,13 @@ def _at_meter(writer: ReadingWriter, g: int, reading: FlowReading) -> FloatArray
 
 def _amounts(found: Estimate, of: _Gas) -> FloatArray:
     """Return the substances of a gas in the account, shape (..., S), mol/s."""
-    forms = of.amounts @ found.account.stream_map
-    open_ = ((~found.told[..., None, :]) & (forms != 0)).any(axis=-1)
-    return np.where(open_, np.nan, found.z @ forms.T)
+    g = of.place[0]
+    assert isinstance(g, int)
+    count = found.account.writer.count
+    weights = of.amounts[:, g * count : (g + 1) * count]
+    flows = found.stream_flows(g)
+    untold = np.isnan(flows).astype(float) @ (weights != 0).T.astype(float) > 0
+    return np.where(untold, np.nan, np.nan_to_num(flows) @ weights.T)
 
 
 def _conditions(found: Estimate, of: _Gas) -> tuple[float | FloatArray, float | FloatArray]:

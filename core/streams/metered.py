@@ -175,7 +175,7 @@ class FlowReading:
     stream's own. ``design`` is that of a differential-pressure meter of a gas
     which shows a flow as if the gas had its design density. Where
     ``at_meter`` says at which temperature (K) and pressure (Pa) it passes the
-    meter, Z of the gas there is open, and both are for Z = 1.
+    meter, Z of the gas there is not stated, and both are for Z = 1.
     """
 
     kind: FlowKind

@@ -648,6 +648,16 @@ case(
     (VOLUME, changed(REVERSIBLE, target__conversion=0.9)),
     "/target/conversion",
 )
+case(
+    "not-a-gas",
+    table(
+        gas_model="peng-robinson",
+        feed__flows={"CO": "0.1 kmol/h", "H2O": "100 kmol/h"},
+        feed__temperature="300 K",
+        feed__pressure="300 bar",
+    ),
+    "/feed",
+)
 
 # -- equilibrium
 STILL: dict[str, Any] = {
@@ -738,16 +748,6 @@ case(
     "/feed",
 )
 case("no-such-temperature", (EQUILIBRIUM, BURNT), "/feed")
-case(
-    "not-a-gas",
-    table(
-        gas_model="peng-robinson",
-        feed__flows={"CO": "0.1 kmol/h", "H2O": "100 kmol/h"},
-        feed__temperature="300 K",
-        feed__pressure="300 bar",
-    ),
-    "/feed",
-)
 
 ELSEWHERE = {
     "not-json": "tests/service/test_bodies_and_forms.py",
@@ -768,7 +768,7 @@ ELSEWHERE = {
     "expectation-failed": "tests/live/test_server.py",
     "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
     "not-converged": "tests/core/outlet_analysis/test_solving.py",
-    "gas-not-converged": "tests/service/test_gas_models_refused.py",
+    "gas-not-converged": "tests/core/outlet_analysis/test_gases.py",
     "rate-not-finite": "tests/core/reactors/test_sizing_refusals.py",
     "removed-substance-read": "tests/core/outlet_analysis/test_estimate_single.py",
     "uncertainty-out-of-range": "tests/core/outlet_analysis/test_estimate_single.py",
