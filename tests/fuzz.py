@@ -1447,25 +1447,29 @@ class Maker:
         return [(f"{pointer}/streams/{k}", one) for k, one in enumerate(side["streams"])]
 
     def gas_model(self, made: Json, system: System) -> bool:
-        """Name a gas model now and then; what counts by volume is not true then."""
-        if not self.chance(0.3 if system.phase == "gas" else 0.03):
+        """Name a gas model now and then; what counts by volume is not true then.
+
+        By chances of its own, so that the other requests of a seed stay what they are.
+        """
+        rnd = random.Random(json.dumps(made, sort_keys=True))
+        if rnd.random() > (0.3 if system.phase == "gas" else 0.03):
             return False
-        made["gas_model"] = self.rnd.choice(["peng-robinson", "soave-redlich-kwong", "ideal"])
-        if self.chance(0.2):
+        made["gas_model"] = rnd.choice(["peng-robinson", "soave-redlich-kwong", "ideal"])
+        if rnd.random() < 0.2:
             names = [*made["feed"].get("flows", {}), "N2", "CO"]
             made["interactions"] = [
                 {
-                    "between": [self.rnd.choice(names), self.rnd.choice(names)],
-                    "parameter": self.rnd.choice([0.1, -1, 1, 0]),
+                    "between": [rnd.choice(names), rnd.choice(names)],
+                    "parameter": rnd.choice([0.1, -1, 1, 0]),
                 }
             ]
         meters = [made[side] for side in ("feed", "outlet") if side in made]
         for stream in meters:
-            if "meter" in stream and self.chance(0.5):
+            if "meter" in stream and rnd.random() < 0.5:
                 stream["meter"].pop("compressibility", None)
-                stream["meter"]["pressure"] = self.rnd.choice(["2 bar", "180 bar", "1e9 Pa"])
+                stream["meter"]["pressure"] = rnd.choice(["2 bar", "180 bar", "1e9 Pa"])
                 stream["meter"].setdefault("temperature", "310 K")
-            if "analysis" in stream and self.chance(0.3):
+            if "analysis" in stream and rnd.random() < 0.3:
                 stream["temperature"], stream["pressure"] = "350 K", "60 bar"
         return True
 
