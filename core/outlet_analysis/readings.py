@@ -62,11 +62,11 @@ class Series:
         m3/mol at a gas meter's own conditions, where they vary.
     density_ratio : ndarray, shape (N,), or None
         ``ratio`` of the design of a differential-pressure meter, where it varies.
+    at_meter : (ndarray, ndarray), each of shape (N,), or None
+        ``at_meter`` of the reading, where it varies; both are for Z = 1 then.
     shared : Mapping of Instrument to float or ndarray, shape (N,)
         As :attr:`core.streams.metered.Measurement.shared`: one error all series
         long, however large its effect on each sample.
-    at_meter : (ndarray, ndarray), each of shape (N,), or None
-        ``at_meter`` of the reading, where it varies; both are for Z = 1 then.
     """
 
     value: FloatArray
@@ -74,8 +74,8 @@ class Series:
     bound: NDArray[np.int8] | None = None
     molar_volume: FloatArray | None = None
     density_ratio: FloatArray | None = None
-    shared: Mapping[Instrument, float | FloatArray] = field(default_factory=dict)
     at_meter: tuple[FloatArray, FloatArray] | None = None
+    shared: Mapping[Instrument, float | FloatArray] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
