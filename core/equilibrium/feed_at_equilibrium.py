@@ -162,9 +162,9 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     count = 1 if problem.values is None else 1 + len(problem.values)
     temperature = _held(problem, "temperature", count)
     pressure = _held(problem, "pressure", count)
-    volume = _volume(problem)
     equation = problem.equation if feed.phase == "gas" else None
     z = _compressibility(problem, equation)
+    volume = _volume(problem, z)
     start, faults = _energy_of_feed(problem, temperature, z)
     adiabatic = not problem.hold.startswith("temperature")
     if adiabatic and start is None:
@@ -293,7 +293,7 @@ def _check(problem: FeedAtEquilibrium) -> None:
     _check_names(problem)
     varies = problem.over == "temperature" or not problem.hold.startswith("temperature")
     if varies:
-        check_temperature_dependence(problem)
+        _check_temperature_dependence(problem)
     if problem.over == "temperature" and problem.values is not None:
         faults = {
             fault.detail + str(fault.facts.get("substance")): fault
@@ -331,7 +331,7 @@ def _check_names(problem: FeedAtEquilibrium) -> None:
             )
 
 
-def check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
+def _check_temperature_dependence(problem: FeedAtEquilibrium) -> None:
     """Refuse constants known at one temperature only, where others come into it.
 
     Raises
@@ -375,8 +375,8 @@ def _held(problem: FeedAtEquilibrium, name: Over, count: int) -> FloatArray | No
     return held
 
 
-def _volume(problem: FeedAtEquilibrium) -> float | None:
-    """Return the volume that is held, or of a liquid, m3 or m3/s."""
+def _volume(problem: FeedAtEquilibrium, z: float) -> float | None:
+    """Return the volume that is held, or of a liquid, m3 or m3/s; ``z`` is that of the feed."""
     feed = problem.feed
     if feed.phase == "liquid":
         own = feed.volumetric_flow
@@ -407,7 +407,7 @@ def _volume(problem: FeedAtEquilibrium) -> float | None:
             "volume is held and not known; state it under 'at', or temperature and pressure of the"
             " feed",
         )
-    return float(own) * _compressibility(problem, problem.equation)
+    return float(own) * z
 
 
 def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None) -> float:

@@ -293,10 +293,6 @@ class Account:
         """Flow of every substance in every stream, shape (..., K), of unknowns (..., n)."""
         return self._flows(slice(self._flow_rows), z)
 
-    def every_form(self, z: FloatArray) -> FloatArray:
-        """Slopes of the flow of every substance in every stream; as :meth:`stream_forms`."""
-        return self._slopes(slice(self._flow_rows), z)
-
     @property
     def _flow_rows(self) -> int:
         return len(self.streams) * len(self.feed_map)
