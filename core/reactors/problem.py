@@ -9,7 +9,6 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import ClassVar, Literal, TypeAlias
 
-
 from core.arrays import FloatArray
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.power_law import PowerLaw
