@@ -37,6 +37,9 @@ LARGEST_EXPONENT = 700.0
 """Of exp: beyond it the exponential stays as it is, so that a trial step of an integrator that
 goes astray is turned back by its error and does not overflow."""
 
+LARGEST_WHOLE_POWER = 100
+"""That is written as products."""
+
 _COMMUTE = {"add", "mul", "max", "min"}
 
 
@@ -110,6 +113,11 @@ _UFUNCS: dict[np.ufunc, str] = {
 def is_symbol(value: Number) -> bool:
     """Whether a number is recorded and not known."""
     return isinstance(value, Symbol)
+
+
+def array_or_symbol(value: Number) -> Number:
+    """Return a known number as an array, and a symbol as it is."""
+    return value if isinstance(value, Symbol) else np.asarray(value, dtype=float)
 
 
 def where_below(a: Number, b: Number, then: Number, otherwise: Number) -> Number:
@@ -225,14 +233,19 @@ class Tape:
             return 1.0
         if p == 1:
             return base
-        if p == int(p) and 2 <= p <= 4:
-            square = self.operate("mul", base, base)
-            return {2: lambda: square, 3: lambda: square * base, 4: lambda: square * square}[
-                int(p)
-            ]()
-        if p == -1:
-            return self.operate("div", 1.0, base)
+        if p == int(p) and abs(p) <= LARGEST_WHOLE_POWER:
+            return self._whole_power(base, int(p))
         return self.operate("amount_to" if amount_only else "to", base, p)
+
+    def _whole_power(self, base: Number, power: int) -> Number:
+        """Record a power as products, those of other powers among them."""
+        if power < 0:
+            return self.operate("div", 1.0, self._whole_power(base, -power))
+        if power == 1:
+            return base
+        half = self._whole_power(base, power // 2)
+        square = self.operate("mul", half, half)
+        return self.operate("mul", square, base) if power % 2 else square
 
 
 def _scalar(value: Any) -> float | None:

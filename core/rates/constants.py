@@ -3,7 +3,8 @@
 A form answers ``ln_at``, the logarithm of its value in SI, because equilibrium
 constants of the same forms run over hundreds of decades; ``at`` is the value
 itself, for what must be a usable number. Parameters may be arrays over N cases
-wherever a float is written.
+wherever a float is written, and a temperature a symbol of a calculation that is
+recorded (:mod:`core.numerics.straight_line`).
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Subject, refuse
+from core.numerics.straight_line import is_symbol
 
 Values: TypeAlias = float | FloatArray
 """One number, or an array over N cases."""
@@ -240,4 +242,6 @@ def needed_temperature(temperature: Values | None) -> FloatArray:
             "a constant that depends on temperature was given, and no temperature: state the "
             "feed's, or a constant that holds at the feed's temperature",
         )
+    if is_symbol(temperature):
+        return temperature  # type: ignore[return-value]
     return positive(temperature, ("feed", "temperature"), "temperature")

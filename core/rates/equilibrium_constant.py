@@ -11,6 +11,7 @@ from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.dimensions import DIMENSIONS, Exponents
 from core.errors import Amount, Note, Subject, refuse
+from core.numerics.straight_line import is_symbol
 from core.rates.constants import (
     TemperatureDependent,
     Values,
@@ -91,11 +92,14 @@ class LnCorrelation:
     def ln_at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return ln K at the temperature, K, shape (...)."""
         t = needed_temperature(temperature)
-        ln = np.full_like(t, np.log(positive(self.scale, subject, "unit of the constant")))
+        ln = np.log(positive(self.scale, subject, "unit of the constant")) + 0.0 * t
         with np.errstate(over="ignore", invalid="ignore"):
             for power, c in self.powers:
-                ln += c * t**power
-            ln += self.of_logarithm * np.log(t)
+                ln = ln + c * t**power
+            ln = ln + self.of_logarithm * np.log(t)
+        if is_symbol(ln):
+            return ln
+        ln = np.asarray(ln)
         if not (np.abs(ln) <= _MOST_DECADES * np.log(10.0)).all():
             bad = int(np.flatnonzero(~(np.abs(ln) <= _MOST_DECADES * np.log(10.0)))[0])
             raise refuse(
