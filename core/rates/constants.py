@@ -111,6 +111,10 @@ class Constant:
         """Return ln(value), shape (...)."""
         return np.log(positive(self.value, subject, "constant"))
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return 0 and 0, see :func:`activation`."""
+        return 0.0, 0.0
+
     def at(self, temperature: Values | None = None, subject: Subject = ()) -> FloatArray:
         """Return the value, see :func:`at`."""
         # Through a logarithm and back the last digits would suffer.
@@ -146,6 +150,10 @@ class Arrhenius:
         ln: FloatArray = np.log(a) - e / (GAS_CONSTANT * t) + n * np.log(t)
         return ln
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return E/R and n, see :func:`activation`."""
+        return np.asarray(self.activation_energy) / GAS_CONSTANT, self.temperature_exponent
+
     def at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return k, see :func:`at`."""
         return at(self, temperature, subject)
@@ -175,6 +183,10 @@ class ConstantAt:
         e = finite(self.activation_energy, (*subject, "activation_energy"), "activation energy")
         return ln_from_reference(self.temperature, self.constant, e, temperature, subject)
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return E/R and 0, see :func:`activation`."""
+        return np.asarray(self.activation_energy) / GAS_CONSTANT, 0.0
+
     def at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return k, see :func:`at`."""
         return at(self, temperature, subject)
@@ -182,6 +194,12 @@ class ConstantAt:
 
 RATE_CONSTANT_FORMS: tuple[type[TemperatureDependent], ...] = (Constant, Arrhenius, ConstantAt)
 """The forms that a rate constant may be given in."""
+
+
+def activation(constant: TemperatureDependent) -> tuple[Values, Values] | None:
+    """Return E/R (K) and n of a constant that goes as T^n exp(-E/RT); None of any other form."""
+    tell = getattr(constant, "activation", None)
+    return None if tell is None else tell()
 
 
 def ln_from_reference(

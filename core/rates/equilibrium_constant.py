@@ -20,7 +20,12 @@ from core.rates.constants import (
     needed_temperature,
     positive,
 )
-from core.rates.power_product import PowerProduct, pressure_per_concentration, product_of
+from core.rates.power_product import (
+    PowerProduct,
+    pressure_per_concentration,
+    product_of,
+    warming_of,
+)
 from core.reactions.reaction_set import ReactionSet
 from core.streams.stream import Stream
 
@@ -62,6 +67,10 @@ class VantHoff:
         """Return ln K at the temperature, K, shape (...)."""
         enthalpy = finite(self.enthalpy, (*subject, "enthalpy"), "enthalpy of reaction")
         return ln_from_reference(self.temperature, self.constant, enthalpy, temperature, subject)
+
+    def activation(self) -> tuple[Values, Values]:
+        """Return dH/R and 0, see :func:`core.rates.constants.activation`."""
+        return np.asarray(self.enthalpy) / GAS_CONSTANT, 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -280,12 +289,19 @@ class EquilibriumConstant:
         )
 
     def quotient_over_constant(
-        self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject
+        self,
+        reactions: ReactionSet,
+        reaction: int,
+        stream: Stream,
+        subject: Subject,
+        *,
+        follow: bool = False,
     ) -> PowerProduct:
         """Return Q/K of one reaction as a product of powers of concentrations.
 
         Substances outside the stream's own phase are pure condensed ones and
         have unit activity. A gas is taken as ideal but for its volume: p = y P.
+        ``follow``: with how it follows temperature from that of the stream.
 
         Raises
         ------
@@ -298,16 +314,19 @@ class EquilibriumConstant:
         if stream.phase == "liquid":
             self.check_liquid(reactions, reaction, stream.in_phase, subject)
         ln_k = self.constant.ln_at(stream.temperature, subject)
+        warming = warming_of(self.constant, -1.0) if follow else None
         if self.kind == "pressure":
-            return product_of(nu, "partial-pressure", stream, -ln_k)
+            return product_of(nu, "partial-pressure", stream, -ln_k, warming)
         if self.kind == "concentration" or stream.phase == "liquid":
-            return product_of(nu, "concentration", stream, -ln_k)
+            return product_of(nu, "concentration", stream, -ln_k, warming)
         standard = positive(
             self.standard_pressure, (*subject, "standard_pressure"), "standard pressure"
         )
         # Before the logarithm, so that near unity no digits are lost between the two.
         ratio = np.log(pressure_per_concentration(stream) / standard)
-        return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0))
+        if warming is not None:
+            warming = warming.times_power(nu.sum())
+        return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0), warming=warming)
 
     def check_liquid(
         self, reactions: ReactionSet, reaction: int, in_phase: BoolArray, subject: Subject
