@@ -27,6 +27,7 @@ from types import CodeType
 from typing import Any, TypeAlias
 
 import numpy as np
+from scipy.special import i0e, i1e
 
 from core.arrays import FloatArray
 
@@ -105,6 +106,7 @@ _UFUNCS: dict[np.ufunc, str] = {
     np.log: "log",
     np.log1p: "log1p",
     np.sqrt: "sqrt",
+    np.tanh: "tanh",
     np.maximum: "max",
     np.minimum: "min",
 }
@@ -126,6 +128,14 @@ def where_below(a: Number, b: Number, then: Number, otherwise: Number) -> Number
         if isinstance(each, Symbol):
             return each.tape.operate("below", a, b, then, otherwise)
     return np.where(np.asarray(a) < b, then, otherwise)
+
+
+def bessel_ratio(x: Number) -> Number:
+    """Return I1(x)/I0(x), of the modified Bessel functions; of a symbol, an array or a float."""
+    if isinstance(x, Symbol):
+        return x.tape.operate("bessel_ratio", x)
+    # Scaled functions: their common factor exp(x) cancels before it overflows.
+    return i1e(x) / i0e(x)
 
 
 def power_of_amount(amount: Number, power: float | FloatArray) -> Number:
@@ -352,8 +362,8 @@ class StraightLine:
     def on(self, operations: Mapping[str, Callable[..., Any]]) -> Callable[..., list[Any]]:
         """Return f(x, y) for numbers of any kind with arithmetic and these operations.
 
-        They are ``exp``, ``expm1``, ``log``, ``log1p``, ``sqrt``, ``max``, ``min``,
-        ``to`` (to a power), ``amount_to`` and ``below``.
+        They are ``exp``, ``expm1``, ``log``, ``log1p``, ``sqrt``, ``tanh``,
+        ``bessel_ratio``, ``max``, ``min``, ``to`` (to a power), ``amount_to`` and ``below``.
         """
         found: Callable[..., list[Any]] = self._bound("arrays", operations, None)
         return found
@@ -405,12 +415,13 @@ def _compiled(text: str) -> CodeType:
     return compile(text, "<straight line>", "exec")
 
 
+_OF_ONE = ("exp", "expm1", "log", "log1p", "sqrt", "tanh", "bessel_ratio")
 _FORMS = {
     "add": "{} + {}",
     "sub": "{} - {}",
     "mul": "{} * {}",
     "div": "{} / {}",
-    **{name: name + "({})" for name in ("exp", "expm1", "log", "log1p", "sqrt")},
+    **{name: name + "({})" for name in _OF_ONE},
     **{name: name + "({}, {})" for name in ("max", "min", "to", "amount_to")},
     "below": "below({}, {}, {}, {})",
 }
@@ -438,6 +449,8 @@ _FLOATS: dict[str, Any] = {
     "log": _log,
     "log1p": lambda x: math.log1p(x) if x > -1 else math.nan,
     "sqrt": lambda x: math.sqrt(x) if x >= 0 else math.nan,
+    "tanh": math.tanh,
+    "bessel_ratio": lambda x: float(i1e(x) / i0e(x)),
     "nan": math.nan,
 }
 
@@ -460,6 +473,8 @@ _ARRAY: dict[str, Callable[..., Any]] = {
     "log": _quiet(np.log),
     "log1p": _quiet(np.log1p),
     "sqrt": _quiet(np.sqrt),
+    "tanh": np.tanh,
+    "bessel_ratio": lambda x: i1e(x) / i0e(x),
     "max": np.maximum,
     "min": np.minimum,
     "to": _quiet(np.power),
@@ -493,6 +508,10 @@ def _slope(tape: Tape, name: str, at: int, ats: list[int], slopes: dict[int, Num
         return d[0] / (v[0] + 1.0)
     if name == "sqrt":
         return 0.5 * d[0] / here
+    if name == "tanh":
+        return (1.0 - here * here) * d[0]
+    if name == "bessel_ratio":
+        return (1.0 - here / v[0] - here * here) * d[0]
     if name in ("to", "amount_to"):
         power = v[1]
         lower = tape.operate(name, v[0], power - 1.0)

@@ -21,16 +21,17 @@ from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
-from scipy.special import i0e, i1e
 
-from core.arrays import FloatArray
 from core.errors import Fault, Subject
+from core.numerics.straight_line import Number, array_or_symbol, bessel_ratio, where_below
 from core.rates.constants import Values, positive
 
 Geometry = Literal["sphere", "cylinder", "slab"]
 Per = Literal["fluid-volume", "bed-volume", "catalyst-mass"]
 """What a rate is counted by: m3 of fluid, m3 of bed, kg of catalyst."""
 
+_NEXT_TO_NOTHING = 1e-150
+"""Modulus for which no pellet is told from one of none."""
 _SERIES_BELOW = 0.2
 """Modulus below which the closed form for the sphere would lose digits."""
 
@@ -108,46 +109,40 @@ def _needed(name: str, basis: str, subject: Subject) -> Fault:
     )
 
 
-def effectiveness_factor(geometry: Geometry, modulus: FloatArray) -> FloatArray:
+def effectiveness_factor(geometry: Geometry, modulus: Number) -> Number:
     """Return the rate in a pellet over that at its surface conditions throughout.
 
     Parameters
     ----------
     geometry : Geometry
-    modulus : ndarray, shape (...)
+    modulus : ndarray, shape (...), or a symbol of a recorded calculation
         Thiele modulus, zero or above, -.
 
     Returns
     -------
     ndarray, shape (...)
     """
-    return _FACTORS[geometry](np.asarray(modulus, dtype=float))
+    return _FACTORS[geometry](np.maximum(array_or_symbol(modulus), _NEXT_TO_NOTHING))
 
 
-def _of_slab(phi: FloatArray) -> FloatArray:
-    factor: FloatArray = np.ones_like(phi)
-    np.divide(np.tanh(phi), phi, out=factor, where=phi > 0)
-    return factor
+def _of_slab(phi: Number) -> Number:
+    return np.tanh(phi) / phi
 
 
-def _of_cylinder(phi: FloatArray) -> FloatArray:
-    factor: FloatArray = np.ones_like(phi)
-    # Scaled Bessel functions: their common factor exp(phi) cancels before it overflows.
-    np.divide(2.0 * i1e(phi), phi * i0e(phi), out=factor, where=phi > 0)
-    return factor
+def _of_cylinder(phi: Number) -> Number:
+    return 2.0 * bessel_ratio(phi) / phi
 
 
-def _of_sphere(phi: FloatArray) -> FloatArray:
-    small = phi < _SERIES_BELOW
-    p = np.where(small, phi, 0.0) ** 2
+def _of_sphere(phi: Number) -> Number:
+    p = phi * phi
     last = 1.0 - p * 10 / 99 * (1.0 - p * 691 / 6825)
     series = 1.0 - p / 15 * (1.0 - p * 2 / 21 * (1.0 - p / 10 * last))
-    large = np.where(small, 1.0, phi)
-    closed = 3.0 * (large / np.tanh(large) - 1.0) / large**2
-    return np.where(small, series, closed)
+    large = np.maximum(phi, _SERIES_BELOW)
+    closed = 3.0 * (large / np.tanh(large) - 1.0) / (large * large)
+    return where_below(phi, _SERIES_BELOW, series, closed)
 
 
-_FACTORS: dict[Geometry, Callable[[FloatArray], FloatArray]] = {
+_FACTORS: dict[Geometry, Callable[[Number], Number]] = {
     "sphere": _of_sphere,
     "cylinder": _of_cylinder,
     "slab": _of_slab,

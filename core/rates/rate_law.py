@@ -178,7 +178,8 @@ class Pores:
 
     def ln_effectiveness(self, rows: Rows, warmth: Warmth | None = None) -> FloatArray:
         """Return the logarithm of the effectiveness, shape (m, q) or (m, 1)."""
-        return np.log(effectiveness_factor(self.pellet.geometry, self.modulus(rows, warmth)))
+        factor: FloatArray = effectiveness_factor(self.pellet.geometry, self.modulus(rows, warmth))
+        return np.log(factor)
 
 
 def _no_columns(_: int) -> FloatArray:

@@ -203,7 +203,7 @@ class HeatCapacity:
     def at(self, temperature: float | FloatArray) -> FloatArray:
         """C_p, J/(mol K), shape of ``temperature`` (K, above zero)."""
         if is_symbol(temperature):
-            inside = np.minimum(np.maximum(temperature, self.lowest), self.highest)
+            inside = self._inside(array_or_symbol(temperature))
             return self._recorded(inside, lambda k: self.pieces[k].form.at(inside))
         t = np.asarray(temperature, dtype=float)
         inside = np.clip(t, self.lowest, self.highest)
@@ -274,7 +274,7 @@ class HeatCapacity:
 
     def _recorded_integral(self, t: FloatArray, which: int) -> FloatArray:
         """Record the integral to one temperature, as :meth:`_integral` finds it."""
-        inside = np.minimum(np.maximum(t, self.lowest), self.highest)
+        inside = self._inside(t)
 
         def of_piece(k: int) -> FloatArray:
             form = self.pieces[k].form
@@ -285,6 +285,12 @@ class HeatCapacity:
         beyond = np.log(t / inside) if which else t - inside
         result: FloatArray = found + self.at(t) * beyond
         return result
+
+    def _inside(self, t: FloatArray) -> FloatArray:
+        """Record the temperature within the range that is closest."""
+        if self.lowest == self.highest:
+            return cast("FloatArray", np.float64(self.lowest))
+        return np.minimum(np.maximum(t, self.lowest), self.highest)
 
     def _recorded(self, t: FloatArray, of_piece: Callable[[int], FloatArray]) -> FloatArray:
         """Record which piece counts; one that holds up to its start gives way there."""
