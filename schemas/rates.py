@@ -11,9 +11,9 @@ from marshmallow import fields
 from core.arrays import FloatArray
 from core.errors import Note, Subject
 from core.rates.constants import Arrhenius, Constant, ConstantAt, TemperatureDependent
-from core.rates.power_law import (
+from core.rates.rate_law import (
     ByAffinity,
-    PowerLaw,
+    RateLaw,
     ReverseConstant,
     expected_unit_exponents,
     expected_unit_parts,
@@ -135,7 +135,7 @@ class RateSchema(ClosedSchema):
 
 def read_rate(
     document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, phase: StreamPhase
-) -> PowerLaw | None:
+) -> RateLaw | None:
     """Return the rate law of the one reaction of an account; None after a fault.
 
     Parameters
@@ -171,7 +171,7 @@ class _RateReader:
         for name in ("driving", "activity", "effectiveness"):
             self.reader.at((*self.subject, name), child(self.place, name))
 
-    def read(self) -> PowerLaw | None:
+    def read(self) -> RateLaw | None:
         kept = len(self.reader.faults)
         orders = self._orders(self.rate, self.place, self.subject)
         constant = self._constant(self.rate, self.place, self.subject)
@@ -180,7 +180,7 @@ class _RateReader:
         floors = self._floors()
         if len(self.reader.faults) > kept or constant is None or of is None:
             return None
-        return PowerLaw(
+        return RateLaw(
             of=of,
             orders=orders,
             constant=constant,

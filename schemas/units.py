@@ -47,6 +47,11 @@ DEFAULT_UNITS: dict[str, str] = {
     "power": "kW",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
+    "length": "m",
+    "area": "m2",
+    "viscosity": "mPa s",
+    "heat_transfer_per_volume": "kW/(m3 K)",
+    "heat_capacity_flow": "kW/K",
 }
 """The unit of each dimension where neither the request nor its fields name one."""
 

@@ -16,7 +16,7 @@ from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNK
 from core.mole_account.targets import DIMENSIONS as TARGET_DIMENSIONS
 from core.mole_account.targets import conversion_for
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity, PowerLaw
+from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.energetics import Energetics
 from core.reactors.kinds import REACTOR_KINDS
@@ -232,7 +232,7 @@ def _read_problem(
 
 def _constant_of(
     said: Json,
-    rate: PowerLaw | None,
+    rate: RateLaw | None,
     reader: RequestReader,
     reactions: ReactionSet,
     phase: StreamPhase,

@@ -24,7 +24,7 @@ from typing import Any, TypeAlias
 import numpy as np
 
 from core.arrays import FloatArray
-from core.numerics.straight_line import LARGEST_EXPONENT
+from core.numerics.straight_line import LARGEST_EXPONENT, bessel_ratio
 
 Bounds: TypeAlias = tuple[Any, Any]
 """Lower and upper, each an array of shape (m,) or a float."""
@@ -140,7 +140,10 @@ class Enclosure:
             return self._shifted(other)
         low, high = _sum(self.values, other.values)
         if self.sign == 0 or self.sign != other.sign:
-            return Enclosure(low, high, _sum(self.slope, other.slope))
+            slope = _sum(self.slope, other.slope)
+            if self.sign * other.sign == 0:
+                return Enclosure(low, high, slope)
+            return Enclosure(low, high, slope, _of_difference(self, other, low, high))
         # Shares of the sum that the first has; relative slopes are averaged by them.
         near, far = (self, other) if self.sign > 0 else (-self, -other)
         least = np.nextafter(near.lower / (near.lower + far.upper), -_INF)
@@ -215,6 +218,30 @@ class Enclosure:
         low, high = _quotient((other, other), self.values)
         b = self.relative
         return Enclosure(low, high, relative=(-b[1], -b[0]))
+
+
+def _of_difference(a: Enclosure, b: Enclosure, low: Any, high: Any) -> Bounds:
+    """Return the relative slope of a sum of terms of opposite sign, where the sum has one."""
+    if a.sign < 0:
+        a, b = -a, -b
+        low, high = -high, -low
+    # With q = |b|/a below one it is that of a, and q/(1 - q) times what the two differ by.
+    above = low > 0
+    larger, smaller = a, -b
+    one, two = larger.relative, smaller.relative
+    with np.errstate(all="ignore"):
+        least = smaller.lower / larger.upper
+        most = smaller.upper / larger.lower
+        lowest, highest = _INF, -_INF
+        for share in (least, most):
+            w = share / (1.0 - share)
+            lowest = np.minimum(lowest, one[0] + w * (one[0] - two[1]))
+            highest = np.maximum(highest, one[1] + w * (one[1] - two[0]))
+        size = np.maximum(np.abs(one[0]), np.abs(one[1]))
+        size = size + np.maximum(np.abs(two[0]), np.abs(two[1]))
+        size = 4 * _ULPS * size * (1.0 + most) / (1.0 - most) ** 2
+        known = above & (most < 1.0)
+    return np.where(known, lowest - size, -_INF), np.where(known, highest + size, _INF)
 
 
 def _quotient(a: Bounds, b: Bounds) -> Bounds:
@@ -331,6 +358,25 @@ def _smaller(a: Any, b: Any) -> Enclosure:
     return Enclosure(found.lower, high, found._slope, found._relative)
 
 
+def _tanh(a: Enclosure) -> Enclosure:
+    low, high = _loosely(np.tanh(a.lower), np.tanh(a.upper))
+    square = _product((low, high), (low, high))
+    rest = np.maximum(1.0 - square[1] - _ULPS, 0.0), 1.0 - np.maximum(square[0], 0.0) + _ULPS
+    return Enclosure(low, high, _product(rest, a.slope))
+
+
+def _bessel_ratio(a: Enclosure) -> Enclosure:
+    """Rises from 0 to 1, ever more slowly, above zero."""
+
+    def slope(x: Any) -> Any:
+        ratio = bessel_ratio(x)
+        return 1.0 - ratio / x - ratio * ratio
+
+    low, high = _loosely(bessel_ratio(a.lower), bessel_ratio(a.upper))
+    rest = np.maximum(slope(a.upper) - _ULPS, 0.0), slope(a.lower) + _ULPS
+    return Enclosure(low, high, _product(rest, a.slope))
+
+
 def _quiet(f: Callable[..., Any]) -> Callable[..., Any]:
     def quiet(*args: Any) -> Any:
         with np.errstate(all="ignore"):
@@ -345,6 +391,8 @@ OPERATIONS: dict[str, Callable[..., Any]] = {
     "log": _on_enclosures(_quiet(np.log), _quiet(_log)),
     "log1p": _on_enclosures(_quiet(np.log1p), _quiet(_log1p)),
     "sqrt": _on_enclosures(_quiet(np.sqrt), _quiet(_sqrt)),
+    "tanh": _on_enclosures(np.tanh, _tanh),
+    "bessel_ratio": _on_enclosures(bessel_ratio, _quiet(_bessel_ratio)),
     "to": _on_enclosures(_quiet(np.power), _quiet(_to)),
     "amount_to": _on_enclosures(
         _quiet(lambda x, p: np.where(np.asarray(x) > 0, np.power(np.maximum(x, _TINY), p), 0.0)),

@@ -27,6 +27,7 @@ from types import CodeType
 from typing import Any, TypeAlias
 
 import numpy as np
+from scipy.special import i0e, i1e
 
 from core.arrays import FloatArray
 
@@ -36,6 +37,9 @@ Number: TypeAlias = Any
 LARGEST_EXPONENT = 700.0
 """Of exp: beyond it the exponential stays as it is, so that a trial step of an integrator that
 goes astray is turned back by its error and does not overflow."""
+
+LARGEST_WHOLE_POWER = 100
+"""That is written as products."""
 
 _COMMUTE = {"add", "mul", "max", "min"}
 
@@ -102,6 +106,7 @@ _UFUNCS: dict[np.ufunc, str] = {
     np.log: "log",
     np.log1p: "log1p",
     np.sqrt: "sqrt",
+    np.tanh: "tanh",
     np.maximum: "max",
     np.minimum: "min",
 }
@@ -112,12 +117,25 @@ def is_symbol(value: Number) -> bool:
     return isinstance(value, Symbol)
 
 
+def array_or_symbol(value: Number) -> Number:
+    """Return a known number as an array, and a symbol as it is."""
+    return value if isinstance(value, Symbol) else np.asarray(value, dtype=float)
+
+
 def where_below(a: Number, b: Number, then: Number, otherwise: Number) -> Number:
     """Return ``then`` where a < b, else ``otherwise``; of symbols, arrays or floats."""
     for each in (a, b, then, otherwise):
         if isinstance(each, Symbol):
             return each.tape.operate("below", a, b, then, otherwise)
     return np.where(np.asarray(a) < b, then, otherwise)
+
+
+def bessel_ratio(x: Number) -> Number:
+    """Return I1(x)/I0(x), of the modified Bessel functions; of a symbol, an array or a float."""
+    if isinstance(x, Symbol):
+        return x.tape.operate("bessel_ratio", x)
+    # Scaled functions: their common factor exp(x) cancels before it overflows.
+    return i1e(x) / i0e(x)
 
 
 def power_of_amount(amount: Number, power: float | FloatArray) -> Number:
@@ -225,14 +243,19 @@ class Tape:
             return 1.0
         if p == 1:
             return base
-        if p == int(p) and 2 <= p <= 4:
-            square = self.operate("mul", base, base)
-            return {2: lambda: square, 3: lambda: square * base, 4: lambda: square * square}[
-                int(p)
-            ]()
-        if p == -1:
-            return self.operate("div", 1.0, base)
+        if p == int(p) and abs(p) <= LARGEST_WHOLE_POWER:
+            return self._whole_power(base, int(p))
         return self.operate("amount_to" if amount_only else "to", base, p)
+
+    def _whole_power(self, base: Number, power: int) -> Number:
+        """Record a power as products, those of other powers among them."""
+        if power < 0:
+            return self.operate("div", 1.0, self._whole_power(base, -power))
+        if power == 1:
+            return base
+        half = self._whole_power(base, power // 2)
+        square = self.operate("mul", half, half)
+        return self.operate("mul", square, base) if power % 2 else square
 
 
 def _scalar(value: Any) -> float | None:
@@ -341,8 +364,9 @@ class StraightLine:
     ) -> Callable[..., list[Any]]:
         """Return f(x, y) for numbers of any kind with arithmetic and these operations.
 
-        They are ``exp``, ``expm1``, ``log``, ``log1p``, ``sqrt``, ``max``, ``min``,
-        ``to`` (to a power), ``amount_to`` and ``below``; ``case`` as in :meth:`on_arrays`.
+        They are ``exp``, ``expm1``, ``log``, ``log1p``, ``sqrt``, ``tanh``,
+        ``bessel_ratio``, ``max``, ``min``, ``to`` (to a power), ``amount_to`` and ``below``;
+        ``case`` as in :meth:`on_arrays`.
         """
         found: Callable[..., list[Any]] = self._bound("arrays", operations, case)
         return found
@@ -394,12 +418,13 @@ def _compiled(text: str) -> CodeType:
     return compile(text, "<straight line>", "exec")
 
 
+_OF_ONE = ("exp", "expm1", "log", "log1p", "sqrt", "tanh", "bessel_ratio")
 _FORMS = {
     "add": "{} + {}",
     "sub": "{} - {}",
     "mul": "{} * {}",
     "div": "{} / {}",
-    **{name: name + "({})" for name in ("exp", "expm1", "log", "log1p", "sqrt")},
+    **{name: name + "({})" for name in _OF_ONE},
     **{name: name + "({}, {})" for name in ("max", "min", "to", "amount_to")},
     "below": "below({}, {}, {}, {})",
 }
@@ -427,6 +452,8 @@ _FLOATS: dict[str, Any] = {
     "log": _log,
     "log1p": lambda x: math.log1p(x) if x > -1 else math.nan,
     "sqrt": lambda x: math.sqrt(x) if x >= 0 else math.nan,
+    "tanh": math.tanh,
+    "bessel_ratio": lambda x: float(i1e(x) / i0e(x)),
     "nan": math.nan,
 }
 
@@ -449,6 +476,8 @@ _ARRAY: dict[str, Callable[..., Any]] = {
     "log": _quiet(np.log),
     "log1p": _quiet(np.log1p),
     "sqrt": _quiet(np.sqrt),
+    "tanh": np.tanh,
+    "bessel_ratio": lambda x: i1e(x) / i0e(x),
     "max": np.maximum,
     "min": np.minimum,
     "to": _quiet(np.power),
@@ -482,6 +511,10 @@ def _slope(tape: Tape, name: str, at: int, ats: list[int], slopes: dict[int, Num
         return d[0] / (v[0] + 1.0)
     if name == "sqrt":
         return 0.5 * d[0] / here
+    if name == "tanh":
+        return (1.0 - here * here) * d[0]
+    if name == "bessel_ratio":
+        return (1.0 - here / v[0] - here * here) * d[0]
     if name in ("to", "amount_to"):
         power = v[1]
         lower = tape.operate(name, v[0], power - 1.0)

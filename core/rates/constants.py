@@ -3,7 +3,8 @@
 A form answers ``ln_at``, the logarithm of its value in SI, because equilibrium
 constants of the same forms run over hundreds of decades; ``at`` is the value
 itself, for what must be a usable number. Parameters may be arrays over N cases
-wherever a float is written.
+wherever a float is written, and a temperature a symbol of a calculation that is
+recorded (:mod:`core.numerics.straight_line`).
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Subject, refuse
+from core.numerics.straight_line import is_symbol
 
 Values: TypeAlias = float | FloatArray
 """One number, or an array over N cases."""
@@ -109,6 +111,10 @@ class Constant:
         """Return ln(value), shape (...)."""
         return np.log(positive(self.value, subject, "constant"))
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return 0 and 0, see :func:`activation`."""
+        return 0.0, 0.0
+
     def at(self, temperature: Values | None = None, subject: Subject = ()) -> FloatArray:
         """Return the value, see :func:`at`."""
         # Through a logarithm and back the last digits would suffer.
@@ -144,6 +150,10 @@ class Arrhenius:
         ln: FloatArray = np.log(a) - e / (GAS_CONSTANT * t) + n * np.log(t)
         return ln
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return E/R and n, see :func:`activation`."""
+        return np.asarray(self.activation_energy) / GAS_CONSTANT, self.temperature_exponent
+
     def at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return k, see :func:`at`."""
         return at(self, temperature, subject)
@@ -173,6 +183,10 @@ class ConstantAt:
         e = finite(self.activation_energy, (*subject, "activation_energy"), "activation energy")
         return ln_from_reference(self.temperature, self.constant, e, temperature, subject)
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return E/R and 0, see :func:`activation`."""
+        return np.asarray(self.activation_energy) / GAS_CONSTANT, 0.0
+
     def at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return k, see :func:`at`."""
         return at(self, temperature, subject)
@@ -180,6 +194,12 @@ class ConstantAt:
 
 RATE_CONSTANT_FORMS: tuple[type[TemperatureDependent], ...] = (Constant, Arrhenius, ConstantAt)
 """The forms that a rate constant may be given in."""
+
+
+def activation(constant: TemperatureDependent) -> tuple[Values, Values] | None:
+    """Return E/R (K) and n of a constant that goes as T^n exp(-E/RT); None of any other form."""
+    tell = getattr(constant, "activation", None)
+    return None if tell is None else tell()
 
 
 def ln_from_reference(
@@ -240,4 +260,6 @@ def needed_temperature(temperature: Values | None) -> FloatArray:
             "a constant that depends on temperature was given, and no temperature: state the "
             "feed's, or a constant that holds at the feed's temperature",
         )
+    if is_symbol(temperature):
+        return temperature  # type: ignore[return-value]
     return positive(temperature, ("feed", "temperature"), "temperature")

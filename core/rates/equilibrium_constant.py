@@ -11,6 +11,7 @@ from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
 from core.dimensions import DIMENSIONS, Exponents
 from core.errors import Amount, Note, Subject, refuse
+from core.numerics.straight_line import is_symbol
 from core.rates.constants import (
     TemperatureDependent,
     Values,
@@ -19,7 +20,12 @@ from core.rates.constants import (
     needed_temperature,
     positive,
 )
-from core.rates.power_product import PowerProduct, pressure_per_concentration, product_of
+from core.rates.power_product import (
+    PowerProduct,
+    pressure_per_concentration,
+    product_of,
+    warming_of,
+)
 from core.reactions.reaction_set import ReactionSet
 from core.streams.stream import Stream
 
@@ -62,6 +68,10 @@ class VantHoff:
         enthalpy = finite(self.enthalpy, (*subject, "enthalpy"), "enthalpy of reaction")
         return ln_from_reference(self.temperature, self.constant, enthalpy, temperature, subject)
 
+    def activation(self) -> tuple[Values, Values]:
+        """Return dH/R and 0, see :func:`core.rates.constants.activation`."""
+        return np.asarray(self.enthalpy) / GAS_CONSTANT, 0.0
+
 
 @dataclass(frozen=True, eq=False)
 class LnCorrelation:
@@ -91,11 +101,14 @@ class LnCorrelation:
     def ln_at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return ln K at the temperature, K, shape (...)."""
         t = needed_temperature(temperature)
-        ln = np.full_like(t, np.log(positive(self.scale, subject, "unit of the constant")))
+        ln = np.log(positive(self.scale, subject, "unit of the constant")) + 0.0 * t
         with np.errstate(over="ignore", invalid="ignore"):
             for power, c in self.powers:
-                ln += c * t**power
-            ln += self.of_logarithm * np.log(t)
+                ln = ln + c * t**power
+            ln = ln + self.of_logarithm * np.log(t)
+        if is_symbol(ln):
+            return ln
+        ln = np.asarray(ln)
         if not (np.abs(ln) <= _MOST_DECADES * np.log(10.0)).all():
             bad = int(np.flatnonzero(~(np.abs(ln) <= _MOST_DECADES * np.log(10.0)))[0])
             raise refuse(
@@ -276,12 +289,19 @@ class EquilibriumConstant:
         )
 
     def quotient_over_constant(
-        self, reactions: ReactionSet, reaction: int, stream: Stream, subject: Subject
+        self,
+        reactions: ReactionSet,
+        reaction: int,
+        stream: Stream,
+        subject: Subject,
+        *,
+        follow: bool = False,
     ) -> PowerProduct:
         """Return Q/K of one reaction as a product of powers of concentrations.
 
         Substances outside the stream's own phase are pure condensed ones and
         have unit activity. A gas is taken as ideal but for its volume: p = y P.
+        ``follow``: with how it follows temperature from that of the stream.
 
         Raises
         ------
@@ -294,16 +314,19 @@ class EquilibriumConstant:
         if stream.phase == "liquid":
             self.check_liquid(reactions, reaction, stream.in_phase, subject)
         ln_k = self.constant.ln_at(stream.temperature, subject)
+        warming = warming_of(self.constant, -1.0) if follow else None
         if self.kind == "pressure":
-            return product_of(nu, "partial-pressure", stream, -ln_k)
+            return product_of(nu, "partial-pressure", stream, -ln_k, warming)
         if self.kind == "concentration" or stream.phase == "liquid":
-            return product_of(nu, "concentration", stream, -ln_k)
+            return product_of(nu, "concentration", stream, -ln_k, warming)
         standard = positive(
             self.standard_pressure, (*subject, "standard_pressure"), "standard pressure"
         )
         # Before the logarithm, so that near unity no digits are lost between the two.
         ratio = np.log(pressure_per_concentration(stream) / standard)
-        return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0))
+        if warming is not None:
+            warming = warming.times_power(nu.sum())
+        return PowerProduct(nu.sum() * ratio - ln_k, np.append(nu, 0.0), warming=warming)
 
     def check_liquid(
         self, reactions: ReactionSet, reaction: int, in_phase: BoolArray, subject: Subject

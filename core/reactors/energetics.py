@@ -32,7 +32,7 @@ from core.rates.equilibrium_constant import (
     EquilibriumConstant,
     coefficient_sum,
 )
-from core.rates.power_law import ReverseConstant
+from core.rates.rate_law import ReverseConstant
 from core.reactors.sizing import Sizing, SizingProblem
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.metered import Measurement

@@ -26,8 +26,8 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fact, Fault, Refused, Subject, refuse
 from core.numerics.quadrature import IndexArray
 from core.numerics.roots import find_root
-from core.rates.power_law import PowerLaw
 from core.rates.power_product import PowerProduct, Rows, spread
+from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.streams.stream import Stream
 
@@ -314,7 +314,7 @@ def reaction_path(
     reactions: ReactionSet,
     key: int,
     feed: Stream,
-    law: PowerLaw,
+    law: RateLaw,
     target: FloatArray | float,
     *,
     constant_volume: bool,
@@ -328,7 +328,7 @@ def reaction_path(
     key : int
     feed : Stream
         Flows of shape (..., S); a batch's amounts.
-    law : PowerLaw
+    law : RateLaw
     target : ndarray, shape (...)
         Conversion asked for.
     constant_volume : bool
@@ -419,7 +419,7 @@ def reaction_path(
     return path
 
 
-def _check(reactions: ReactionSet, key: int, feed: Stream, law: PowerLaw) -> None:
+def _check(reactions: ReactionSet, key: int, feed: Stream, law: RateLaw) -> None:
     if len(reactions.reactions) != 1:
         raise refuse(
             "one-reaction-only",
@@ -609,7 +609,7 @@ def _share(logit: FloatArray) -> FloatArray:
     return 1.0 / (1.0 + np.exp(-logit))
 
 
-def _check_reach(reactions: ReactionSet, feed: Stream, law: PowerLaw, path: ReactionPath) -> None:
+def _check_reach(reactions: ReactionSet, feed: Stream, law: RateLaw, path: ReactionPath) -> None:
     """Refuse a target beyond the limit, and rates without bound on the way to it."""
     left, account = path.target_left, path.account
     beyond = (left < 0) | (path.target_gone < 0) | (path.limit == 0) & (path.target != 0)

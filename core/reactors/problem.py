@@ -11,7 +11,7 @@ from typing import ClassVar, Literal, TypeAlias
 
 from core.arrays import FloatArray
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import PowerLaw
+from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.equation import KnownGas
 from core.streams.stream import Stream
@@ -247,7 +247,7 @@ class ReactorProblem:
     Attributes
     ----------
     reactions : ReactionSet
-    laws : tuple of PowerLaw, length R
+    laws : tuple of RateLaw, length R
     key : int
     feed : Stream
         Flows of shape (S,), mol/s; of a batch the charge, mol.
@@ -264,7 +264,7 @@ class ReactorProblem:
     """
 
     reactions: ReactionSet
-    laws: tuple[PowerLaw, ...]
+    laws: tuple[RateLaw, ...]
     key: int
     feed: Stream
     reactor: Reactor

@@ -15,7 +15,7 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Note, refuse
 from core.numerics.quadrature import IndexArray
-from core.rates.power_law import PowerLaw
+from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.path import ReactionPath, reaction_path
 from core.streams.stream import Stream
@@ -46,7 +46,7 @@ class SizingProblem:
         Index of the key reactant A.
     feed : Stream
         Flows of shape (..., S), or the amounts of a batch.
-    rate : PowerLaw
+    rate : RateLaw
         Per volume of fluid.
     target_conversion : float or ndarray, shape (...)
         Of the key; below zero where the reaction is to run backwards. For zero
@@ -57,7 +57,7 @@ class SizingProblem:
     reactions: ReactionSet
     key: int
     feed: Stream
-    rate: PowerLaw
+    rate: RateLaw
     target_conversion: FloatArray | float
     reactor: ReactorKind
 

@@ -15,7 +15,7 @@ rounded (0.45724, 0.07780; 0.42747, 0.08664).
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Literal
@@ -24,6 +24,10 @@ import numpy as np
 
 from core.arrays import BoolArray, FloatArray
 from core.constants import GAS_CONSTANT
+from core.numerics.straight_line import Number
+
+_RECORDED_STEPS = 10
+"""Of Newton's method; of a gas up to its critical pressure seven settle the last digits."""
 
 GasModel = Literal["peng-robinson", "soave-redlich-kwong"]
 
@@ -227,6 +231,63 @@ class CubicEquation:
         found = GAS_CONSTANT * temperature / (v - b) - a / ((v + form.d1 * b) * (v + form.d2 * b))
         return np.where(v > b, found, np.nan)
 
+    def record(
+        self,
+        temperature: Number,
+        fractions: Sequence[Number],
+        pressure: Number | None = None,
+        molar_volume: Number | None = None,
+    ) -> tuple[Number, list[Number]]:
+        """Return Z and the logarithms of the fugacity coefficients of a gas that is recorded.
+
+        At a pressure: the largest root of the cubic, by Newton's method from 1 + B, where
+        Z would be without attraction; above the root the cubic is convex. Where there is
+        no gas, or close to the critical point, what comes out is not the root: who uses
+        it compares its results with :meth:`compressibility_of_gas`.
+
+        Parameters
+        ----------
+        temperature : Number
+            K; see :mod:`core.numerics.straight_line`.
+        fractions : sequence of Number, length S
+            Mole fractions.
+        pressure, molar_volume : Number
+            Pa, or m3/mol; one of them.
+        """
+        form, root, b_each, m, factor = self._parameters
+        reduced = [np.sqrt(temperature / float(t)) for t in self.critical_temperature]
+        plain = [1.0 + float(w) * (1.0 - r) for w, r in zip(m, reduced, strict=True)]
+        s = [float(q) * np.maximum(p, -p) for q, p in zip(root, plain, strict=True)]
+        parts = [y * each for y, each in zip(fractions, s, strict=True)]
+        whole = _sum(parts)
+        lessened = [
+            _sum([(1.0 - float(f)) * p for f, p in zip(row, parts, strict=True)]) for row in factor
+        ]
+        shared = [whole - less for less in lessened]
+        a = _sum([p * each for p, each in zip(parts, shared, strict=True)])
+        b = _sum([y * float(each) for y, each in zip(fractions, b_each, strict=True)])
+        rt = temperature * GAS_CONSTANT
+        span = form.d1 - form.d2
+        if molar_volume is not None:
+            v = molar_volume
+            z = v / (v - b) - a * v / (rt * (v + form.d1 * b) * (v + form.d2 * b))
+            big_b = b * z / v
+        else:
+            big_b = b * pressure / rt
+            c2, c1, c0 = _cubic(form, a * pressure / rt**2, big_b)
+            z = 1.0 + big_b
+            for _ in range(_RECORDED_STEPS):
+                value = c0 + z * (c1 + z * (c2 + z))
+                z = z - value / (c1 + z * (2.0 * c2 + 3.0 * z))
+        log = np.log1p(span * big_b / (z + form.d2 * big_b))
+        rest, free = z - 1.0, np.log(z - big_b)
+        pull = log / (b * rt * span)
+        ln_phi = []
+        for each, own, with_all in zip(b_each.tolist(), s, shared, strict=True):
+            ratio = each / b
+            ln_phi.append(ratio * rest - free - pull * (2.0 * own * with_all - a * ratio))
+        return z, ln_phi
+
     def _root(self, a: FloatArray, b: FloatArray) -> FloatArray:
         """Return the root Z of the cubic with the lowest Gibbs energy."""
         form = _FORMS[self.model]
@@ -241,6 +302,13 @@ class CubicEquation:
         with np.errstate(invalid="ignore", divide="ignore"):
             dense = (low > b) & (low < high) & (gibbs(low) < gibbs(high))
         return np.where(dense, low, high)
+
+
+def _sum(numbers: Sequence[Number]) -> Number:
+    total: Number = 0.0
+    for number in numbers:
+        total = total + number
+    return total
 
 
 def _cubic(form: _Form, a: FloatArray, b: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:

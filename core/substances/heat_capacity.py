@@ -11,7 +11,7 @@ first one upward, and the equation of the TRC tables::
 vol. II, TRC, 1994). Enthalpy and entropy count from 298.15 K. Where one piece
 gives way to the next a heat of transition may be taken up. Beyond the pieces
 heat capacity stays as it is at their end: a polynomial runs away from its data,
-and a constant does not.
+and a constant does not. A temperature may be a symbol of a recorded calculation.
 """
 
 from __future__ import annotations
@@ -27,6 +27,7 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
+from core.numerics.straight_line import array_or_symbol, is_symbol, where_below
 
 REFERENCE_TEMPERATURE = 298.15
 """K; of enthalpies of formation and standard entropies."""
@@ -136,7 +137,7 @@ def _over_sum(y: FloatArray, r: float) -> list[FloatArray]:
     terms = [(-y / r) ** j for j in range(100)]
     found = []
     for n in range(9):
-        series = sum((term / (n + 1 + j) for j, term in enumerate(terms)), np.zeros_like(y))
+        series = sum((term / (n + 1 + j) for j, term in enumerate(terms)), 0.0 * y)
         found.append(y ** (n + 1) / r * series)
     return found
 
@@ -201,17 +202,20 @@ class HeatCapacity:
 
     def at(self, temperature: float | FloatArray) -> FloatArray:
         """C_p, J/(mol K), shape of ``temperature`` (K, above zero)."""
+        if is_symbol(temperature):
+            inside = self._inside(array_or_symbol(temperature))
+            return self._recorded(inside, lambda k: self.pieces[k].form.at(inside))
         t = np.asarray(temperature, dtype=float)
         inside = np.clip(t, self.lowest, self.highest)
         return self._by_piece(inside, lambda k, x: self.pieces[k].form.at(x))
 
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
         """H(T) - H(298.15 K), J/mol, shape of ``temperature`` (K)."""
-        return self._integral(np.asarray(temperature, dtype=float), 0) - self._at_reference[0]
+        return self._integral(array_or_symbol(temperature), 0) - self._at_reference[0]
 
     def entropy(self, temperature: float | FloatArray) -> FloatArray:
         """S(T) - S(298.15 K), J/(mol K), shape of ``temperature`` (K)."""
-        return self._integral(np.asarray(temperature, dtype=float), 1) - self._at_reference[1]
+        return self._integral(array_or_symbol(temperature), 1) - self._at_reference[1]
 
     def beyond(self, temperature: float | FloatArray) -> float:
         """How far the farthest temperature lies outside the range, K; 0 inside."""
@@ -241,6 +245,8 @@ class HeatCapacity:
 
     def _integral(self, t: FloatArray, which: int) -> FloatArray:
         """Integral from the lowest temperature of C_p (0) or of C_p/T (1)."""
+        if is_symbol(t):
+            return self._recorded_integral(t, which)
         if t.size == 1:
             return np.full(t.shape, self._one_integral(float(t.flat[0]), which))
         inside = np.clip(t, self.lowest, self.highest)
@@ -264,6 +270,33 @@ class HeatCapacity:
         found = float(here) + self._offsets[k][which]
         if inside != t:
             found += float(form.at(x)) * (math.log(t / inside) if which else t - inside)
+        return found
+
+    def _recorded_integral(self, t: FloatArray, which: int) -> FloatArray:
+        """Record the integral to one temperature, as :meth:`_integral` finds it."""
+        inside = self._inside(t)
+
+        def of_piece(k: int) -> FloatArray:
+            form = self.pieces[k].form
+            here = form.entropy(inside) if which else form.enthalpy(inside)
+            return here + self._offsets[k][which]
+
+        found = self._recorded(inside, of_piece)
+        beyond = np.log(t / inside) if which else t - inside
+        result: FloatArray = found + self.at(t) * beyond
+        return result
+
+    def _inside(self, t: FloatArray) -> FloatArray:
+        """Record the temperature within the range that is closest."""
+        if self.lowest == self.highest:
+            return cast("FloatArray", np.float64(self.lowest))
+        return np.minimum(np.maximum(t, self.lowest), self.highest)
+
+    def _recorded(self, t: FloatArray, of_piece: Callable[[int], FloatArray]) -> FloatArray:
+        """Record which piece counts; one that holds up to its start gives way there."""
+        found = of_piece(0)
+        for k, start in enumerate(self._inner, 1):
+            found = where_below(t, start, found, of_piece(k))
         return found
 
     @cached_property

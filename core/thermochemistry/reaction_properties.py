@@ -24,6 +24,7 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fault, Note, Refused, Subject
+from core.numerics.straight_line import array_or_symbol, is_symbol
 from core.rates.constants import Values, needed_temperature
 from core.reactions.reaction_set import ReactionSet
 from core.substances.property_data import STATED, WANTED, StandardProperties, standard_properties
@@ -60,11 +61,11 @@ class ReactionProperties:
 
     def enthalpy(self, temperature: float | FloatArray) -> FloatArray:
         """Enthalpy of reaction per mole of extent, J/mol, shape of ``temperature`` (K)."""
-        t = np.asarray(temperature, dtype=float)
-        total = np.full_like(t, self.enthalpy_at_reference)
+        t = array_or_symbol(temperature)
+        total: FloatArray = self.enthalpy_at_reference + 0.0 * t
         for nu, p in self._pairs():
             assert p.heat_capacity is not None
-            total += nu * p.heat_capacity.enthalpy(t)
+            total = total + nu * p.heat_capacity.enthalpy(t)
         return total
 
     @property
@@ -87,11 +88,11 @@ class ReactionProperties:
 
     def entropy(self, temperature: float | FloatArray) -> FloatArray:
         """Entropy of reaction at 1 bar, J/(mol K), shape of ``temperature`` (K)."""
-        t = np.asarray(temperature, dtype=float)
-        total = np.full_like(t, self.entropy_at_reference)
+        t = array_or_symbol(temperature)
+        total: FloatArray = self.entropy_at_reference + 0.0 * t
         for nu, p in self._pairs():
             assert p.heat_capacity is not None
-            total += nu * p.heat_capacity.entropy(t)
+            total = total + nu * p.heat_capacity.entropy(t)
         return total
 
     def heat_capacity(self, temperature: float | FloatArray) -> FloatArray:
@@ -105,8 +106,9 @@ class ReactionProperties:
 
     def gibbs(self, temperature: float | FloatArray) -> FloatArray:
         """Standard Gibbs energy of reaction, J/mol, shape of ``temperature`` (K)."""
-        t = np.asarray(temperature, dtype=float)
-        return self.enthalpy(t) - t * self.entropy(t)
+        t = array_or_symbol(temperature)
+        gibbs: FloatArray = self.enthalpy(t) - t * self.entropy(t)
+        return gibbs
 
     def ln_at(self, temperature: Values | None, subject: Subject = ()) -> FloatArray:
         """Return ln K at the temperature, K, shape (...).
@@ -117,7 +119,8 @@ class ReactionProperties:
             ``condition-missing``, ``outside-correlation``.
         """
         t = needed_temperature(temperature)
-        self.check_range(t, subject)
+        if not is_symbol(t):
+            self.check_range(t, subject)
         ln: FloatArray = -self.gibbs(t) / (GAS_CONSTANT * t)
         return ln
 

@@ -17,7 +17,7 @@ from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity, PowerLaw
+from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.reaction_set import Reaction, ReactionSet
 from core.reactors.plug_flow import PlugFlow
 from core.reactors.sizing import SizingProblem
@@ -75,7 +75,7 @@ class Group:
                 temperature=TEMPERATURE,
                 pressure=PRESSURE,
             ),
-            PowerLaw(0, orders, Constant(of(self.k)), reverse=reverse),
+            RateLaw(0, orders, Constant(of(self.k)), reverse=reverse),
             of(self.conversion),
             PlugFlow(),
         )

@@ -5,9 +5,9 @@ from numpy.testing import assert_allclose
 
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity
+from core.rates.rate_law import ByAffinity
 from core.reactors.plug_flow import Batch, PlugFlow
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ATM = 101325.0
 
@@ -15,7 +15,7 @@ ATM = 101325.0
 def limit(reactions, feed, kind, k, reactor=None):
     """Return the equilibrium conversion of the first substance."""
     reverse = ByAffinity(EquilibriumConstant(kind, Constant(k)))
-    law = power_law(reactions, {reactions.names[0]: 1}, 1.0, reverse=reverse)
+    law = rate_law(reactions, {reactions.names[0]: 1}, 1.0, reverse=reverse)
     found = size(reactions, feed, law, 0.0, reactor or PlugFlow()).limit
     assert found.at_equilibrium
     return float(found.conversion)

@@ -5,10 +5,10 @@ import pytest
 from numpy.testing import assert_allclose
 
 from core.rates.constants import Constant
-from core.rates.power_law import PowerLaw, ReverseConstant
+from core.rates.rate_law import RateLaw, ReverseConstant
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ATM = 101325.0
 FT3 = 0.3048**3
@@ -21,7 +21,7 @@ def test_half_order_gas_reaction():
     # The book rounds CA0 to 0.0625 mol/L, 0.1 % above that of the gas law, which is 0.02 s here.
     reactions = reaction_set({"A": -1, "R": 3, "I": 0})
     feed = gas(reactions, {"A": 1, "I": 1}, 488.15, 5 * ATM)
-    law = power_law(reactions, {"A": 0.5}, 1e-2 * 1000**0.5)
+    law = rate_law(reactions, {"A": 0.5}, 1e-2 * 1000**0.5)
     found = size(reactions, feed, law, 0.8, PlugFlow())
     assert_allclose(found.space_time, 33.2, atol=0.05)
     c0 = 1.0 / float(feed.volumetric_flow)
@@ -35,7 +35,7 @@ def test_phosphine_decomposition():
     reactions = reaction_set({"PH3": -4, "P4": 1, "H2": 6})
     feed = gas(reactions, {"PH3": 40 / 3600}, 922.0, 460e3)
     assert_allclose(40 / 3600 / float(feed.volumetric_flow), 60, atol=0.05)
-    law = power_law(reactions, {"PH3": 1}, 10 / 3600)
+    law = rate_law(reactions, {"PH3": 1}, 10 / 3600)
     assert_allclose(size(reactions, feed, law, 0.8, PlugFlow()).size, 0.148, atol=0.0005)
 
 
@@ -49,7 +49,7 @@ def test_ethylene_glycol():
     assert_allclose(made, 6.137, atol=0.003)
     v = 2 * made / 0.8 * FT3 / 60
     # 1 lbmol/ft3 halved by mixing; the unit of amount cancels.
-    law = power_law(reactions, {"oxide": 1}, 0.311 / 60)
+    law = rate_law(reactions, {"oxide": 1}, 0.311 / 60)
 
     def feed(flow):
         return liquid(reactions, {"oxide": 8009.0, "water": 30000.0}, flow)
@@ -80,7 +80,7 @@ def test_integrated_rate_equations(order, time):
     # O. Levenspiel, Chemical Reaction Engineering, 3rd ed., Wiley, 1999, ch. 3 and 5: CA0 = 2,
     # k = 1, X = 0.9. Common practice (closed form).
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": order}, 1.0)
+    law = rate_law(reactions, {"A": order}, 1.0)
     pipe = size(reactions, liquid(reactions, {"A": 2.0}), law, 0.9, PlugFlow())
     assert_allclose(pipe.space_time, time, rtol=1e-12)
     batch = size(reactions, liquid(reactions, {"A": 2.0}, batch=True), law, 0.9, Batch())
@@ -91,7 +91,7 @@ def test_integrated_rate_equations(order, time):
 def test_one_stirred_tank(order, space_time):
     # As above, stirred tank.
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": order}, 1.0)
+    law = rate_law(reactions, {"A": order}, 1.0)
     tank = size(reactions, liquid(reactions, {"A": 2.0}), law, 0.9, StirredTank())
     assert_allclose(tank.space_time, space_time, rtol=1e-12)
 
@@ -101,7 +101,7 @@ def test_ends_of_the_recycle_reactor():
     # order, CA0 = 1, X = 0.9: k CA0 tau = 9 without recycle (plug flow), 90 with all recycled
     # (stirred tank). From memory.
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 2}, 1.0)
+    law = rate_law(reactions, {"A": 2}, 1.0)
     feed = liquid(reactions, {"A": 1.0})
     assert_allclose(size(reactions, feed, law, 0.9, PlugFlow()).space_time, 9.0, atol=1e-6)
     assert_allclose(size(reactions, feed, law, 0.9, StirredTank()).space_time, 90.0, atol=1e-3)
@@ -113,7 +113,7 @@ def test_reversible_batch():
     # 8 min, 66.7 % at equilibrium. From memory. Half the last digit of each constant is
     # 1e-5/0.0866 in all of the time.
     reactions = reaction_set({"A": -1, "R": 1})
-    law = PowerLaw(
+    law = RateLaw(
         0,
         np.array([1.0, 0.0]),
         Constant(0.05776),
@@ -130,7 +130,7 @@ def test_worked_example_of_the_service():
     # tau = X/(k (1 - X)) = 12.8617 min and ln 5/k = 5.17504 min.
     reactions = reaction_set({"A": -1, "R": 1})
     feed = liquid(reactions, {"A": 2000.0}, 10 / 3600)
-    law = power_law(reactions, {"A": 1}, 0.311 / 60)
+    law = rate_law(reactions, {"A": 1}, 0.311 / 60)
     tank = size(reactions, feed, law, 0.8, StirredTank())
     assert_allclose(tank.size, 2.14362, atol=5e-6)
     assert_allclose(tank.space_time / 60, 12.8617, atol=5e-5)

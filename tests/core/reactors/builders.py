@@ -8,8 +8,8 @@ from fractions import Fraction
 import numpy as np
 
 from core.rates.constants import Constant
-from core.rates.power_law import ByAffinity, PowerLaw, ReverseConstant
 from core.rates.power_product import Driving
+from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import Reaction, ReactionSet
 from core.reactors.sizing import ReactorKind, Sizing, SizingProblem, size_reactor
 from core.streams.stream import Stream
@@ -66,7 +66,7 @@ def gas(
     )
 
 
-def power_law(
+def rate_law(
     reactions: ReactionSet,
     orders: Mapping[str, float],
     k: float = 0.01,
@@ -76,8 +76,8 @@ def power_law(
     reverse: ByAffinity | ReverseConstant | None = None,
     floors: Mapping[str, float] | None = None,
     **factors: float,
-) -> PowerLaw:
-    return PowerLaw(
+) -> RateLaw:
+    return RateLaw(
         0 if of is None else reactions.index(of),
         vector(reactions, orders),
         Constant(k),
@@ -91,7 +91,7 @@ def power_law(
 def size(
     reactions: ReactionSet,
     feed: Stream,
-    law: PowerLaw,
+    law: RateLaw,
     target: float | np.ndarray,
     reactor: ReactorKind,
     *,

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import mpmath as mp
 
-from core.rates.power_law import ByAffinity
+from core.rates.rate_law import ByAffinity
 from core.reactors.sizing import SizingProblem
 
 DIGITS = 40

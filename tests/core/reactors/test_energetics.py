@@ -9,7 +9,7 @@ from numpy.testing import assert_allclose
 
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
-from core.rates.power_law import ByAffinity, PowerLaw
+from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.build import ReactionInput, build_reaction_set
 from core.reactors.energetics import WORTH_A_CAUTION, energetics_of
 from core.reactors.plug_flow import Batch, PlugFlow
@@ -64,7 +64,7 @@ def asked(
     )
     reverse = None if k is None else ByAffinity(k)
     orders = np.array([float(name == "A") for name in reactions.names])
-    rate = PowerLaw(reactions.index("A"), orders, Constant(0.1), reverse=reverse)
+    rate = RateLaw(reactions.index("A"), orders, Constant(0.1), reverse=reverse)
     reactor = PlugFlow() if batch is None else Batch(hold=batch)
     problem = SizingProblem(reactions, reactions.index("A"), feed, rate, np.array(x), reactor)
     stated = {} if heat is None else {0: StatedHeat(heat, reactions.index("A"), t)}

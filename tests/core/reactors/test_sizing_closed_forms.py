@@ -7,10 +7,10 @@ from numpy.testing import assert_allclose
 from core.constants import GAS_CONSTANT
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity, ReverseConstant
+from core.rates.rate_law import ByAffinity, ReverseConstant
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 TIGHT = 1e-12
 V = 1e-3
@@ -31,7 +31,7 @@ def nth_order(n, k, c0, x):
 def test_order_n_in_a_liquid(n, x):
     reactions = reaction_set({"A": -1, "R": 1})
     k, c0 = 0.02 * 2000 ** (1 - n), 2000.0
-    law = power_law(reactions, {"A": n}, k)
+    law = rate_law(reactions, {"A": n}, k)
     expected = nth_order(n, k, c0, x)
     pipe = size(reactions, liquid(reactions, {"A": c0}), law, x, PlugFlow())
     assert_allclose(pipe.space_time, expected, rtol=TIGHT)
@@ -48,7 +48,7 @@ def test_complete_conversion_below_first_order(n, expected):
     # t = c0^(1-n) / ((1-n) k); a negative order needs a floor only where it would act.
     reactions = reaction_set({"A": -1, "R": 1})
     floors = {"A": 1e-300} if n < 0 else None
-    law = power_law(reactions, {"A": n}, 2000.0 ** (1 - n), floors=floors)
+    law = rate_law(reactions, {"A": n}, 2000.0 ** (1 - n), floors=floors)
     found = size(reactions, liquid(reactions, {"A": 2000.0}), law, 1.0, PlugFlow(), points=11)
     assert_allclose(found.space_time, expected, rtol=1e-11)
     assert found.distance_to_limit == 0
@@ -58,7 +58,7 @@ def test_complete_conversion_below_first_order(n, expected):
 
 def test_almost_first_order_reaches_complete_conversion_late():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 0.9999}, 2000.0**1e-4)
+    law = rate_law(reactions, {"A": 0.9999}, 2000.0**1e-4)
     found = size(reactions, liquid(reactions, {"A": 2000.0}), law, 1.0, PlugFlow())
     assert_allclose(found.space_time, 1e4, rtol=1e-9)
 
@@ -70,7 +70,7 @@ def test_first_order_in_a_gas_with_changing_volume(products, x):
     reactions = reaction_set({"A": -1, "R": products, "I": 0})
     feed = gas(reactions, {"A": 0.6, "I": 0.4})
     eps, k = 0.6 * (products - 1), 0.03
-    law = power_law(reactions, {"A": 1}, k)
+    law = rate_law(reactions, {"A": 1}, k)
     found = size(reactions, feed, law, x, PlugFlow(), points=6)
     left = 1.0 - x
     assert_allclose(found.space_time, (-(1 + eps) * np.log(left) - eps * x) / k, rtol=TIGHT)
@@ -94,7 +94,7 @@ def test_second_order_gas_at_constant_pressure():
     feed = gas(reactions, {"A": 1.0}, 500.0, 2e5)
     c0 = 2e5 / (GAS_CONSTANT * 500.0)
     eps, x, k = 0.5, 0.9, 1e-3
-    law = power_law(reactions, {"A": 2}, k)
+    law = rate_law(reactions, {"A": 2}, k)
     expected = (2 * eps * (1 + eps) * np.log1p(-x) + eps**2 * x + (eps + 1) ** 2 * x / (1 - x)) / (
         k * c0
     )
@@ -110,7 +110,7 @@ def test_reversible_first_order_liquid(distance):
     x = xe * (1 - distance)
     exact = 1 - x / xe
     for reverse in (k_c(k1 / k2), ReverseConstant(Constant(k2), np.array([0.0, 1.0]))):
-        law = power_law(reactions, {"A": 1}, k1, reverse=reverse)
+        law = rate_law(reactions, {"A": 1}, k1, reverse=reverse)
         found = size(reactions, liquid(reactions, {"A": 800, "R": 200}), law, x, PlugFlow())
         assert_allclose(found.limit.conversion, xe, rtol=1e-14)
         assert found.limit.at_equilibrium
@@ -124,7 +124,7 @@ def test_feed_beyond_equilibrium_runs_backwards():
     # The mirror image of R -> A seen from A: a conversion below zero.
     reactions = reaction_set({"A": -1, "R": 1})
     k1, k2 = 0.02, 0.05
-    law = power_law(reactions, {"A": 1}, k1, reverse=k_c(k1 / k2))
+    law = rate_law(reactions, {"A": 1}, k1, reverse=k_c(k1 / k2))
     feed = liquid(reactions, {"A": 200, "R": 800})
     xe = (k1 * 200 - k2 * 800) / (k1 + k2) / 200
     x = 0.9 * xe
@@ -143,7 +143,7 @@ def test_feed_beyond_equilibrium_runs_backwards():
 
 def test_backwards_from_nothing_but_product_and_a_trace_of_key():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 1}, 0.02, reverse=k_c(1.0))
+    law = rate_law(reactions, {"A": 1}, 0.02, reverse=k_c(1.0))
     feed = liquid(reactions, {"A": 1e-6, "R": 1000})
     xe = (1e-6 - 1000) / 2 / 1e-6
     found = size(reactions, feed, law, 0.5 * xe, PlugFlow())
@@ -156,7 +156,7 @@ def test_second_order_with_two_reactants(m, x):
     # Levenspiel, 3rd ed., eq. 3.18: ln((M - X)/(M (1 - X))) = C_A0 (M - 1) k t.
     reactions = reaction_set({"A": -1, "B": -1, "R": 1})
     k, c0 = 1e-5, 1000.0
-    law = power_law(reactions, {"A": 1, "B": 1}, k)
+    law = rate_law(reactions, {"A": 1, "B": 1}, k)
     found = size(reactions, liquid(reactions, {"A": c0, "B": m * c0}), law, x, PlugFlow())
     expected = x / (1 - x) / (c0 * k)
     if m != 1.0:
@@ -170,7 +170,7 @@ def test_autocatalysis_with_product_in_the_feed():
     # Levenspiel, 3rd ed., eq. 3.38: t = ln(...)/(k C0), A + R -> 2 R.
     reactions = reaction_set({"A": -1, "R": 1})
     k, a0, r0, x = 1e-4, 990.0, 10.0, 0.95
-    law = power_law(reactions, {"A": 1, "R": 1}, k)
+    law = rate_law(reactions, {"A": 1, "R": 1}, k)
     found = size(reactions, liquid(reactions, {"A": a0, "R": r0}), law, x, PlugFlow())
     total = a0 + r0
     a = a0 * (1 - x)
@@ -187,8 +187,8 @@ def test_whose_rate_it_is():
     # 2 A -> R with the rate of R given: A goes twice as fast.
     reactions = reaction_set({"A": -2, "R": 1})
     feed = liquid(reactions, {"A": 1000})
-    of_r = size(reactions, feed, power_law(reactions, {"A": 1}, 0.01, of="R"), 0.8, PlugFlow())
-    of_a = size(reactions, feed, power_law(reactions, {"A": 1}, 0.02, of="A"), 0.8, PlugFlow())
+    of_r = size(reactions, feed, rate_law(reactions, {"A": 1}, 0.01, of="R"), 0.8, PlugFlow())
+    of_a = size(reactions, feed, rate_law(reactions, {"A": 1}, 0.02, of="A"), 0.8, PlugFlow())
     assert_allclose(of_r.space_time, np.log(5) / 0.02, rtol=TIGHT)
     assert_allclose(of_r.size, of_a.size, rtol=1e-14)
 
@@ -196,8 +196,8 @@ def test_whose_rate_it_is():
 def test_activity_and_effectiveness_scale_the_rate_both_ways():
     reactions = reaction_set({"A": -1, "R": 1})
     feed = liquid(reactions, {"A": 1000})
-    plain = power_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0))
-    scaled = power_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0), activity=0.5, effectiveness=0.4)
+    plain = rate_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0))
+    scaled = rate_law(reactions, {"A": 1}, 0.01, reverse=k_c(3.0), activity=0.5, effectiveness=0.4)
     before = size(reactions, feed, plain, 0.7, PlugFlow())
     after = size(reactions, feed, scaled, 0.7, PlugFlow())
     assert_allclose(after.size, 5 * before.size, rtol=TIGHT)
@@ -210,12 +210,12 @@ def test_partial_pressures_and_mole_fractions():
     t, p, k, n = 500.0, 2e5, 0.01, 1.5
     flows = {"A": 0.5, "I": 0.5}
     reference = size(
-        reactions, gas(reactions, flows), power_law(reactions, {"A": n}, k), 0.8, PlugFlow()
+        reactions, gas(reactions, flows), rate_law(reactions, {"A": n}, k), 0.8, PlugFlow()
     )
-    by_pressure = power_law(
+    by_pressure = rate_law(
         reactions, {"A": n}, k / (GAS_CONSTANT * t) ** n, driving="partial-pressure"
     )
-    by_fraction = power_law(
+    by_fraction = rate_law(
         reactions, {"A": n}, k * (p / (GAS_CONSTANT * t)) ** n, driving="mole-fraction"
     )
     for law in (by_pressure, by_fraction):
@@ -226,7 +226,7 @@ def test_partial_pressures_and_mole_fractions():
         )
     # At constant volume the total rises, and a mole fraction lags behind the concentration:
     # dX/dt = (k'/C_A0) ((1 - X)/(2 + X))^1 for first order in y, theta_I = 1.
-    first = power_law(reactions, {"A": 1}, 3.0, driving="mole-fraction")
+    first = rate_law(reactions, {"A": 1}, 3.0, driving="mole-fraction")
     charge = gas(reactions, flows, batch=True)
     c0 = 0.5 * p / (GAS_CONSTANT * t)
     x = 0.8
@@ -236,7 +236,7 @@ def test_partial_pressures_and_mole_fractions():
 
 def test_compressibility_spreads_the_gas():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 1}, 0.01)
+    law = rate_law(reactions, {"A": 1}, 0.01)
     dense = size(reactions, gas(reactions, {"A": 1}), law, 0.9, PlugFlow())
     thin = size(reactions, gas(reactions, {"A": 1}, compressibility=1.2), law, 0.9, PlugFlow())
     assert_allclose(thin.size, 1.2 * dense.size, rtol=TIGHT)
@@ -247,13 +247,13 @@ def test_condensed_product_takes_no_part_in_the_volume():
     # A(g) -> S(s): the gas shrinks with eps = -y_A0, and S has no concentration.
     reactions = reaction_set({"A": -1, "S": 1, "I": 0}, condensed=("S",))
     feed = gas(reactions, {"A": 0.6, "I": 0.4})
-    found = size(reactions, feed, power_law(reactions, {"A": 1}, 0.03), 0.9, PlugFlow())
+    found = size(reactions, feed, rate_law(reactions, {"A": 1}, 0.03), 0.9, PlugFlow())
     eps = -0.6
     assert_allclose(found.space_time, ((1 + eps) * np.log(10) - eps * 0.9) / 0.03, rtol=TIGHT)
     # Pure A keeps its concentration while it shrinks: zero order in effect, first in name, and
     # the rate stands at its first value until the last of the gas.
     pure = size(
-        reactions, gas(reactions, {"A": 1.0}), power_law(reactions, {"A": 1}, 0.03), 0.9, PlugFlow()
+        reactions, gas(reactions, {"A": 1.0}), rate_law(reactions, {"A": 1}, 0.03), 0.9, PlugFlow()
     )
     assert_allclose(pure.space_time, 0.9 / 0.03, rtol=TIGHT)
     assert_allclose(pure.mean_residence_time, np.log(10) / 0.03, rtol=TIGHT)
@@ -263,7 +263,7 @@ def test_floor_holds_a_negative_order():
     # r = k C_A / max(C_R, f): below the floor first order with k/f, above it with the product.
     reactions = reaction_set({"A": -1, "R": 1})
     k, c0, floor, x = 5.0, 1000.0, 100.0, 0.95
-    law = power_law(reactions, {"A": 1, "R": -1}, k, floors={"R": floor})
+    law = rate_law(reactions, {"A": 1, "R": -1}, k, floors={"R": floor})
     found = size(reactions, liquid(reactions, {"A": c0}), law, x, PlugFlow(), points=21)
 
     def above(z):
@@ -284,7 +284,7 @@ def test_equal_tanks_first_order(number):
     # tau_N = N/k ((C0/C)^(1/N) - 1), Levenspiel, 3rd ed., eq. 6.6.
     reactions = reaction_set({"A": -1, "R": 1})
     k = 0.01
-    law = power_law(reactions, {"A": 1}, k)
+    law = rate_law(reactions, {"A": 1}, k)
     for left in (0.2, 1e-6):
         found = size(reactions, liquid(reactions, {"A": 500}), law, 1 - left, TanksInSeries(number))
         left = float(1 - (1 - left))
@@ -300,7 +300,7 @@ def test_equal_tanks_first_order(number):
 def test_two_tanks_second_order():
     # Each tank: k tau C^2 + C - C_before = 0, solved forwards.
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 2}, 1e-4)
+    law = rate_law(reactions, {"A": 2}, 1e-4)
     found = size(reactions, liquid(reactions, {"A": 500}), law, 0.9, TanksInSeries(2))
     k_tau = 1e-4 * float(found.space_time) / 2
     c = 500.0
@@ -312,7 +312,7 @@ def test_two_tanks_second_order():
 
 def test_zero_order_tanks_are_filled_to_the_end():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {}, 2.0)
+    law = rate_law(reactions, {}, 2.0)
     for reactor in (StirredTank(), TanksInSeries(4), PlugFlow()):
         found = size(reactions, liquid(reactions, {"A": 500}), law, 1.0, reactor)
         assert_allclose(found.space_time, 250, rtol=1e-12)
@@ -320,7 +320,7 @@ def test_zero_order_tanks_are_filled_to_the_end():
 
 def test_no_conversion_takes_no_volume():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = power_law(reactions, {"A": 1, "R": 1})
+    law = rate_law(reactions, {"A": 1, "R": 1})
     feed = liquid(reactions, {"A": 500})
     for reactor in (PlugFlow(), StirredTank(), TanksInSeries(3)):
         found = size(reactions, feed, law, 0.0, reactor)

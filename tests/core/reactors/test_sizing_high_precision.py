@@ -7,10 +7,10 @@ from scipy.integrate import solve_ivp
 
 from core.rates.constants import Arrhenius, Constant, ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
-from core.rates.power_law import ByAffinity, PowerLaw, ReverseConstant
+from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.sizing import SizingProblem, size_reactor
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, vector
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, vector
 from tests.core.reactors.high_precision import size_of
 
 AMMONIA = reaction_set({"N2": -0.5, "H2": -1.5, "NH3": 1, "Ar": 0})
@@ -27,7 +27,7 @@ def by_affinity(kind, constant, exponent=1.0, **more):
 def problems():
     ammonia_feed = gas(AMMONIA, {"N2": 1.0, "H2": 3.0, "NH3": 0.1, "Ar": 0.2}, 700.0, 2e7)
     # K_p = 0.009 bar^-1 as Pa^-1.
-    ammonia = power_law(
+    ammonia = rate_law(
         AMMONIA,
         {"N2": 1, "H2": 2.25, "NH3": -1.5},
         1e-14,
@@ -41,7 +41,7 @@ def problems():
             AMMONIA,
             0,
             ammonia_feed,
-            power_law(
+            rate_law(
                 AMMONIA,
                 {"N2": 0.5, "H2": 1.5},
                 1e-8,
@@ -54,7 +54,7 @@ def problems():
     )
     feed = gas(DECOMPOSITION, {"A": 0.7, "I": 0.3}, 340.0, 2.0265e5)
     for driving, k in (("concentration", 0.5), ("mole-fraction", 30.0)):
-        law = power_law(
+        law = rate_law(
             DECOMPOSITION,
             {"A": 1},
             k,
@@ -62,7 +62,7 @@ def problems():
             reverse=by_affinity("concentration", 100.0),
         )
         yield f"N2O4, {driving}", SizingProblem(DECOMPOSITION, 0, feed, law, 0.53, PlugFlow())
-    shift = power_law(
+    shift = rate_law(
         SHIFT,
         {"CO": 0.9, "H2O": 0.3, "CO2": -0.6},
         0.05,
@@ -71,7 +71,7 @@ def problems():
     )
     shift_feed = gas(SHIFT, {"CO": 1, "H2O": 3, "N2": 1}, 620.0, 25e5, compressibility=1.01)
     yield "shift with a floor", SizingProblem(SHIFT, 0, shift_feed, shift, 0.9, PlugFlow())
-    ester = power_law(
+    ester = rate_law(
         ESTER,
         {"acid": 1, "alcohol": 1},
         2e-7,
@@ -79,7 +79,7 @@ def problems():
     )
     charge = liquid(ESTER, {"acid": 5000, "alcohol": 6000, "water": 500}, batch=True)
     yield "ester batch", SizingProblem(ESTER, 0, charge, ester, 0.66, Batch())
-    odd = power_law(
+    odd = rate_law(
         ESTER,
         {"acid": 1.3, "alcohol": -0.4, "solvent": 0.5},
         1e-5,
@@ -97,17 +97,17 @@ def problems():
             PlugFlow(),
         ),
     )
-    solid = power_law(SOLID, {"A": 1}, 0.02, of="R", reverse=by_affinity("pressure", 3e-5, 0.5))
+    solid = rate_law(SOLID, {"A": 1}, 0.02, of="R", reverse=by_affinity("pressure", 3e-5, 0.5))
     solid_feed = gas(SOLID, {"A": 0.8, "I": 0.2}, 900.0, 1.5e5)
     yield "condensed product", SizingProblem(SOLID, 0, solid_feed, solid, 0.73, PlugFlow())
     for hold in ("volume", "pressure"):
-        law = power_law(DECOMPOSITION, {"A": 0.5}, 0.5, reverse=by_affinity("pressure", 3e5, 1.0))
+        law = rate_law(DECOMPOSITION, {"A": 0.5}, 0.5, reverse=by_affinity("pressure", 3e5, 1.0))
         batch_feed = gas(DECOMPOSITION, {"A": 0.7, "I": 0.3}, 340.0, 2e5, batch=True)
         yield (
             f"batch, {hold}",
             SizingProblem(DECOMPOSITION, 0, batch_feed, law, 0.4, Batch(hold)),
         )
-    backwards = power_law(
+    backwards = rate_law(
         SHIFT, {"CO": 1, "H2O": 1}, 1e-3, reverse=by_affinity("thermodynamic", 0.8, 0.5)
     )
     yield (
@@ -139,7 +139,7 @@ def test_against_forty_digits(problem):
 def test_close_to_equilibrium(distance, k_p):
     # From K_p 1e-8 bar to 1e9 bar: X_eq from 1e-5 to one less 1e-11.
     feed = gas(DECOMPOSITION, {"A": 0.7, "I": 0.3}, 340.0, 2e5)
-    law = power_law(DECOMPOSITION, {"A": 1}, 0.5, reverse=by_affinity("pressure", k_p))
+    law = rate_law(DECOMPOSITION, {"A": 1}, 0.5, reverse=by_affinity("pressure", k_p))
     problem = SizingProblem(DECOMPOSITION, 0, feed, law, 0.0, PlugFlow())
     limit = float(size_reactor(problem).limit.conversion)
     problem = SizingProblem(DECOMPOSITION, 0, feed, law, limit * (1 - distance), PlugFlow())
@@ -153,7 +153,7 @@ def test_constants_that_follow_temperature():
     feed = gas(SHIFT, {"CO": 1, "H2O": 3, "N2": 1}, 620.0, 25e5)
     arrhenius = Arrhenius(1e6, 100e3, 0.5)
     for constant in (arrhenius, ConstantAt(650.0, 0.02, 110e3)):
-        law = PowerLaw(0, orders, constant, reverse=reverse)
+        law = RateLaw(0, orders, constant, reverse=reverse)
         problem = SizingProblem(SHIFT, 0, feed, law, 0.8, PlugFlow())
         assert_allclose(size_reactor(problem).size, float(size_of(problem)), rtol=1e-11)
 
@@ -161,7 +161,7 @@ def test_constants_that_follow_temperature():
 def test_an_integrator_agrees_along_the_profile():
     # dF/dV integrated by SciPy from the feed, all substances, two reactants and a product.
     feed = gas(SHIFT, {"CO": 1.0, "H2O": 2.0, "CO2": 0.1, "H2": 0.3}, 700.0, 5e5)
-    law = power_law(SHIFT, {"CO": 1, "H2O": 1}, 1e-3, reverse=by_affinity("thermodynamic", 9.0))
+    law = rate_law(SHIFT, {"CO": 1, "H2O": 1}, 1e-3, reverse=by_affinity("thermodynamic", 9.0))
     found = size_reactor(SizingProblem(SHIFT, 0, feed, law, 0.85, PlugFlow()), 12)
     nu = SHIFT.nu[0]
 
@@ -186,7 +186,7 @@ def test_opposing_rates_that_begin_with_nothing():
     reactions = reaction_set({"A": -1, "R": 3})
     reverse = ByAffinity(EquilibriumConstant("concentration", Constant(k_c)), 0.5)
     feed = liquid(reactions, {"A": 10.0})
-    law = power_law(reactions, {"A": 1}, 0.2, reverse=reverse)
+    law = rate_law(reactions, {"A": 1}, 0.2, reverse=reverse)
     limit = size_reactor(SizingProblem(reactions, 0, feed, law, 0.0, PlugFlow())).limit
     problem = SizingProblem(reactions, 0, feed, law, 0.7 * limit.conversion, PlugFlow())
     found = size_reactor(problem, 4)

@@ -7,11 +7,11 @@ from numpy.testing import assert_allclose
 
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity, PowerLaw
+from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.sizing import SizingProblem, size_reactor
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size, vector
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size, vector
 
 # CO + 3 H2 <=> CH4 + H2O beside an inert; atoms of C, H, O, N by substance.
 NAMES = ("CO", "H2", "CH4", "H2O", "N2")
@@ -35,7 +35,7 @@ def problem(flows, a, b, ln_k, share, reactor, order=range(5)):
     nu = dict(zip(NAMES, (-1, -3, 1, 1, 0), strict=True))
     reactions = reaction_set({name: nu[name] for name in names})
     feed = gas(reactions, dict(zip(NAMES, flows, strict=True)), 600.0, 1e6)
-    law = PowerLaw(
+    law = RateLaw(
         reactions.index("CO"),
         vector(reactions, {"CO": a, "H2": b}),
         Constant(1e-3),
@@ -86,7 +86,7 @@ def test_more_flow_needs_as_much_more_volume(case, factor):
 def test_a_faster_reaction_needs_as_much_less_volume(case, factor):
     asked = problem(*case)
     law = asked.rate
-    faster = PowerLaw(law.of, law.orders, Constant(1e-3 * factor), reverse=law.reverse)
+    faster = RateLaw(law.of, law.orders, Constant(1e-3 * factor), reverse=law.reverse)
     again = SizingProblem(asked.reactions, asked.key, asked.feed, faster, asked.target_conversion,
                           asked.reactor)  # fmt: skip
     assert_allclose(size_reactor(again).size * factor, size_reactor(asked).size, rtol=1e-11)
@@ -97,7 +97,7 @@ def test_a_faster_reaction_needs_as_much_less_volume(case, factor):
 def test_plug_flow_is_smallest_where_the_rate_falls(n, k_c, product, share):
     reactions = reaction_set({"A": -1, "R": 1})
     reverse = ByAffinity(EquilibriumConstant("concentration", Constant(k_c)))
-    law = power_law(reactions, {"A": n}, 1e-3, reverse=reverse)
+    law = rate_law(reactions, {"A": n}, 1e-3, reverse=reverse)
     feed = liquid(reactions, {"A": 1000, "R": 1000 * product * k_c})
     limit = float(size(reactions, feed, law, 0.0, PlugFlow()).limit.conversion)
     pipe, three, two, one = (
@@ -111,7 +111,7 @@ def test_plug_flow_is_smallest_where_the_rate_falls(n, k_c, product, share):
 @settings(max_examples=60, deadline=None)
 def test_a_batch_at_constant_volume_is_a_liquid(n, x, k):
     reactions = reaction_set({"A": -1, "R": 2})
-    law = power_law(reactions, {"A": n}, k)
+    law = rate_law(reactions, {"A": n}, k)
     feed = gas(reactions, {"A": 3.0}, batch=True)
     c0 = 3.0 / float(feed.volumetric_flow)
     charge = size(reactions, feed, law, x, Batch())
@@ -133,7 +133,7 @@ def test_many_cases_at_once_are_the_single_ones():
         feed = gas(reactions, {}, 600.0, 1e6)
         feed = type(feed)(flows[rows], feed.in_phase, "gas", temperature=600.0, pressure=1e6)
         reverse = ByAffinity(EquilibriumConstant("pressure", Constant(k_p[rows])))
-        return feed, PowerLaw(0, law_orders[rows], Constant(k[rows]), reverse=reverse)
+        return feed, RateLaw(0, law_orders[rows], Constant(k[rows]), reverse=reverse)
 
     feed, law = at(slice(None))
     limit = size_reactor(SizingProblem(reactions, 0, feed, law, 0.0, PlugFlow())).limit
@@ -155,7 +155,7 @@ def test_many_cases_at_once_are_the_single_ones():
 
 def test_complete_and_partial_targets_side_by_side():
     reactions = reaction_set({"A": -1, "R": 1})
-    law = PowerLaw(0, np.array([[0.5, 0], [0.5, 0], [0, 0.0]]), Constant(np.array([1.0, 2, 3])))
+    law = RateLaw(0, np.array([[0.5, 0], [0.5, 0], [0, 0.0]]), Constant(np.array([1.0, 2, 3])))
     feed = liquid(reactions, {"A": 100})
     found = size(reactions, feed, law, np.array([1.0, 0.5, 1.0]), PlugFlow(), points=3)
     expected = np.array([20.0, 10 * (1 - 0.5**0.5), 100 / 3])

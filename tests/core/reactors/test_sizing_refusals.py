@@ -7,18 +7,18 @@ from numpy.testing import assert_allclose
 from core.errors import Amount, Refused
 from core.rates.constants import Arrhenius, Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity, PowerLaw, ReverseConstant
+from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.sizing import SizingProblem, size_reactor
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
 from core.streams.stream import Stream
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 AB = reaction_set({"A": -1, "B": -2, "R": 1})
 A = reaction_set({"A": -1, "R": 1})
-FIRST = power_law(A, {"A": 1})
+FIRST = rate_law(A, {"A": 1})
 FEED = liquid(A, {"A": 1000})
 
 
@@ -45,7 +45,7 @@ def test_beyond_the_limiting_reactant(reactor, x):
 
 
 def test_another_reactant_runs_out_first():
-    law = power_law(AB, {"A": 1, "B": 1}, 1e-6)
+    law = rate_law(AB, {"A": 1, "B": 1}, 1e-6)
     feed = liquid(AB, {"A": 1000, "B": 600})
     fault = refusal("target-out-of-reach", TARGET, AB, feed, law, 0.31, PlugFlow())
     assert fault.facts["substance"] == "B"
@@ -54,7 +54,7 @@ def test_another_reactant_runs_out_first():
 
 
 def test_at_and_beyond_equilibrium():
-    law = power_law(
+    law = rate_law(
         A, {"A": 1}, reverse=ByAffinity(EquilibriumConstant("concentration", Constant(4.0)))
     )
     for x in (0.8, 0.80001, 0.99, 2.0):
@@ -66,7 +66,7 @@ def test_at_and_beyond_equilibrium():
 
 def test_the_other_way():
     refusal("target-out-of-reach", TARGET, A, FEED, FIRST, -0.1, PlugFlow())
-    law = power_law(
+    law = rate_law(
         A, {"A": 1}, reverse=ByAffinity(EquilibriumConstant("concentration", Constant(4.0)))
     )
     beyond = liquid(A, {"A": 100, "R": 900})
@@ -79,11 +79,11 @@ def test_the_other_way():
 
 
 def test_a_missing_reactant():
-    law = power_law(AB, {"A": 1})
+    law = rate_law(AB, {"A": 1})
     feed = liquid(AB, {"A": 1000})
     fault = refusal("target-out-of-reach", TARGET, AB, feed, law, 0.1, PlugFlow())
     assert "holds no B" in str(fault)
-    reversible = power_law(
+    reversible = rate_law(
         AB, {"A": 1}, reverse=ByAffinity(EquilibriumConstant("concentration", Constant(4.0)))
     )
     fault = refusal("target-out-of-reach", TARGET, AB, feed, reversible, 0.1, PlugFlow())
@@ -92,7 +92,7 @@ def test_a_missing_reactant():
 
 def test_nothing_that_could_react_takes_no_volume():
     two = reaction_set({"A": -1, "B": -1, "R": 1})
-    law = power_law(
+    law = rate_law(
         two,
         {"A": 1, "B": 1},
         reverse=ByAffinity(EquilibriumConstant("concentration", Constant(0.01))),
@@ -112,14 +112,14 @@ def test_of_several_cases_the_ones_out_of_reach_are_named():
 
 
 def test_nothing_begins_without_product():
-    law = power_law(A, {"A": 1, "R": 1}, 1e-5)
+    law = rate_law(A, {"A": 1, "R": 1}, 1e-5)
     where = ("feed", "flows")
     fault = refusal("reaction-does-not-start", where, A, FEED, law, 0.5, PlugFlow())
     assert "R" in str(fault)
     charge = liquid(A, {"A": 1000}, batch=True)
     refusal("reaction-does-not-start", where, A, charge, law, 0.5, Batch())
     inert = reaction_set({"A": -1, "R": 1, "K": 0})
-    catalysed = power_law(inert, {"A": 1, "K": 1}, 1e-5)
+    catalysed = rate_law(inert, {"A": 1, "K": 1}, 1e-5)
     feed = liquid(inert, {"A": 1000})
     for reactor in (PlugFlow(), StirredTank(), TanksInSeries(2)):
         fault = refusal("reaction-does-not-start", where, inert, feed, catalysed, 0.5, reactor)
@@ -129,7 +129,7 @@ def test_nothing_begins_without_product():
 def test_both_directions_lack_a_catalyst():
     inert = reaction_set({"A": -1, "R": 1, "K": 0, "L": 0})
     reverse = ReverseConstant(Constant(1.0), np.array([0.0, 1, 0, 1]))
-    law = power_law(inert, {"A": 1, "K": 1}, 1e-5, reverse=reverse)
+    law = rate_law(inert, {"A": 1, "K": 1}, 1e-5, reverse=reverse)
     feed = liquid(inert, {"A": 1000, "R": 10})
     refusal("reaction-does-not-start", ("feed", "flows"), inert, feed, law, 0.5, PlugFlow())
 
@@ -137,15 +137,15 @@ def test_both_directions_lack_a_catalyst():
 @pytest.mark.parametrize("reactor", [PlugFlow(), StirredTank()])
 def test_negative_order_of_what_is_absent(reactor):
     where = ("reactions", "r1", "rate", "orders", "R")
-    law = power_law(A, {"A": 1, "R": -0.5})
+    law = rate_law(A, {"A": 1, "R": -0.5})
     refusal("negative-order-needs-floor", where, A, FEED, law, 0.5, reactor)
     assert size(A, liquid(A, {"A": 1000, "R": 1}), law, 0.5, reactor).size > 0
-    floored = power_law(A, {"A": 1, "R": -0.5}, floors={"R": 1.0})
+    floored = rate_law(A, {"A": 1, "R": -0.5}, floors={"R": 1.0})
     assert size(A, FEED, floored, 0.5, reactor).size > 0
 
 
 def test_negative_order_of_what_runs_out_at_the_target():
-    law = power_law(A, {"A": -0.5})
+    law = rate_law(A, {"A": -0.5})
     where = ("reactions", "r1", "rate", "orders", "A")
     refusal("negative-order-needs-floor", where, A, FEED, law, 1.0, PlugFlow())
     assert size(A, FEED, law, 0.999, PlugFlow()).size > 0
@@ -154,7 +154,7 @@ def test_negative_order_of_what_runs_out_at_the_target():
 def test_affinity_without_forward_reactant_has_no_bound():
     # Backwards from a feed without B: forward * Q/K goes as 1/C_B.
     two = reaction_set({"A": -1, "B": -1, "R": 1})
-    law = power_law(
+    law = rate_law(
         two, {"A": 1}, reverse=ByAffinity(EquilibriumConstant("concentration", Constant(0.01)))
     )
     feed = liquid(two, {"A": 100, "R": 900})
@@ -179,7 +179,7 @@ def test_missing_conditions_are_all_named(feed, missing):
 
 
 def test_a_constant_that_needs_a_temperature():
-    law = PowerLaw(0, np.array([1.0, 0]), Arrhenius(1e5, 50e3))
+    law = RateLaw(0, np.array([1.0, 0]), Arrhenius(1e5, 50e3))
     refusal("condition-missing", ("feed", "temperature"), A, FEED, law, 0.5, PlugFlow())
     charge = Stream(np.array([1.0, 0]), np.ones(2, bool), "liquid", batch=True)
     refusal("condition-missing", ("feed", "volume"), A, charge, FIRST, 0.5, Batch())
@@ -209,17 +209,17 @@ def test_number_of_tanks(number):
 
 def test_no_gas_at_one_end_or_the_other():
     solid = reaction_set({"A": -1, "S": 1}, condensed=("S",))
-    law = power_law(solid, {"A": 1})
+    law = rate_law(solid, {"A": 1})
     refusal("phase-vanishes", TARGET, solid, gas(solid, {"A": 1}), law, 1.0, PlugFlow())
     burning = reaction_set({"S": -1, "R": 1}, condensed=("S",))
-    zero_order = power_law(burning, {})
+    zero_order = rate_law(burning, {})
     refusal("phase-vanishes", ("feed",), burning, gas(burning, {"S": 1}), zero_order, 0.5,
             PlugFlow())  # fmt: skip
 
 
 def test_a_gas_that_a_closed_vessel_loses():
     solid = reaction_set({"A": -1, "S": 1}, condensed=("S",))
-    law = power_law(solid, {})
+    law = rate_law(solid, {})
     charge = gas(solid, {"A": 1}, batch=True)
     for hold in ("volume", "pressure"):
         refusal("phase-vanishes", TARGET, solid, charge, law, 1.0, Batch(hold))
@@ -227,14 +227,14 @@ def test_a_gas_that_a_closed_vessel_loses():
 
 
 def test_a_rate_that_is_zero_to_the_last_digit():
-    law = power_law(A, {"A": -150})
+    law = rate_law(A, {"A": -150})
     where = ("reactions", "r1", "rate")
     refusal("reaction-does-not-start", where, A, FEED, law, 0.5, PlugFlow())
 
 
 def test_a_rate_without_number():
     # 10^500 overflows no logarithm but is no rate.
-    law = power_law(A, {"A": 100}, 1e250)
+    law = rate_law(A, {"A": 100}, 1e250)
     refusal("rate-not-finite", ("reactions",), A, FEED, law, 0.5, PlugFlow())
 
 

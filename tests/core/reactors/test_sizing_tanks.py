@@ -7,10 +7,10 @@ from scipy.optimize import brentq
 
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from core.rates.power_law import ByAffinity
+from core.rates.rate_law import ByAffinity
 from core.reactors.plug_flow import PlugFlow
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, size
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ISOMERS = reaction_set({"A": -1, "R": 1})
 
@@ -22,7 +22,7 @@ def codes(found):
 def test_many_tanks_approach_plug_flow_from_above():
     reactions = reaction_set({"A": -1, "R": 2, "I": 0})
     reverse = ByAffinity(EquilibriumConstant("pressure", Constant(2e5)))
-    law = power_law(reactions, {"A": 1.5}, 1e-3, reverse=reverse)
+    law = rate_law(reactions, {"A": 1.5}, 1e-3, reverse=reverse)
     feed = gas(reactions, {"A": 0.7, "I": 0.3}, 340.0, 2e5)
     pipe = float(size(reactions, feed, law, 0.45, PlugFlow()).size)
     volumes = [
@@ -38,7 +38,7 @@ def test_many_tanks_approach_plug_flow_from_above():
 
 def test_each_tank_keeps_its_own_balance():
     reactions = reaction_set({"A": -1, "B": -2, "R": 1, "I": 0})
-    law = power_law(reactions, {"A": 1, "B": 0.5}, 0.02)
+    law = rate_law(reactions, {"A": 1, "B": 0.5}, 0.02)
     feed = gas(reactions, {"A": 1.0, "B": 1.5, "I": 0.5}, 400.0, 3e5)
     found = size(reactions, feed, law, 0.7, TanksInSeries(7))
     before = np.concatenate([[0], found.tanks.conversion[:-1]])
@@ -53,7 +53,7 @@ def test_each_tank_keeps_its_own_balance():
 
 
 def test_near_the_limit_the_march_loses_nothing():
-    law = power_law(ISOMERS, {"A": 2}, 1e-4)
+    law = rate_law(ISOMERS, {"A": 2}, 1e-4)
     feed = liquid(ISOMERS, {"A": 500})
     x = 1 - 1e-9
     found = size(ISOMERS, feed, law, x, TanksInSeries(3))
@@ -66,7 +66,7 @@ def test_near_the_limit_the_march_loses_nothing():
 
 
 def test_small_conversion_loses_nothing():
-    law = power_law(ISOMERS, {"A": 1}, 0.01)
+    law = rate_law(ISOMERS, {"A": 1}, 0.01)
     found = size(ISOMERS, liquid(ISOMERS, {"A": 500}), law, 1e-9, TanksInSeries(5))
     assert_allclose(found.space_time, -np.log1p(-1e-9) / 0.01, rtol=1e-8)
     assert_allclose(found.tanks.conversion, 1e-9 * np.arange(1, 6) / 5, rtol=1e-8)
@@ -74,7 +74,7 @@ def test_small_conversion_loses_nothing():
 
 def test_autocatalysis_without_product_in_the_feed():
     # r = k C^2 X (1 - X): a tank works once it holds product, and its state is stable.
-    law = power_law(ISOMERS, {"A": 1, "R": 1}, 1e-5)
+    law = rate_law(ISOMERS, {"A": 1, "R": 1}, 1e-5)
     feed = liquid(ISOMERS, {"A": 1000})
     found = size(ISOMERS, feed, law, 0.5, StirredTank())
     assert_allclose(found.space_time, 1 / (1e-5 * 1000 * 0.5), rtol=1e-13)
@@ -99,7 +99,7 @@ def test_autocatalysis_without_product_in_the_feed():
 def test_smallest_of_several_volumes(product, order, number, x, several):
     # r rises steeply with product: up to five volumes meet the target. The reference marches on
     # a grid eighty times finer and refines the first crossing with Brent's method.
-    law = power_law(ISOMERS, {"A": 1, "R": order}, 1.0)
+    law = rate_law(ISOMERS, {"A": 1, "R": order}, 1.0)
     feed = liquid(ISOMERS, {"A": 1.0, "R": product})
 
     def rate(z):
@@ -125,11 +125,11 @@ def test_smallest_of_several_volumes(product, order, number, x, several):
 
 def test_a_state_that_the_tank_leaves_is_marked():
     # r = k (1 - X) X^2: X r'/r = (2 - 3 X)/(1 - X) exceeds 1 below X = 1/2.
-    law = power_law(ISOMERS, {"A": 1, "R": 2}, 1e-9)
+    law = rate_law(ISOMERS, {"A": 1, "R": 2}, 1e-9)
     feed = liquid(ISOMERS, {"A": 1000})
     assert "unstable-steady-state" in codes(size(ISOMERS, feed, law, 0.49, StirredTank()))
     assert "unstable-steady-state" not in codes(size(ISOMERS, feed, law, 0.51, StirredTank()))
-    first_order = power_law(ISOMERS, {"A": 1}, 1e-2)
+    first_order = rate_law(ISOMERS, {"A": 1}, 1e-2)
     assert codes(size(ISOMERS, feed, first_order, 0.49, TanksInSeries(3))) == []
 
 
@@ -139,10 +139,10 @@ def test_many_cases_are_the_single_ones(number):
     k, x = 10 ** rng.uniform(-4, -2, 30), rng.uniform(0.01, 0.999, 30)
     feed = liquid(ISOMERS, {"A": 1000, "R": 5})
     together = size(
-        ISOMERS, feed, power_law(ISOMERS, {"A": 1, "R": 0.5}, k), x, TanksInSeries(number)
+        ISOMERS, feed, rate_law(ISOMERS, {"A": 1, "R": 0.5}, k), x, TanksInSeries(number)
     )
     for i in range(30):
-        law = power_law(ISOMERS, {"A": 1, "R": 0.5}, float(k[i]))
+        law = rate_law(ISOMERS, {"A": 1, "R": 0.5}, float(k[i]))
         alone = size(ISOMERS, feed, law, float(x[i]), TanksInSeries(number))
         assert_allclose(together.size[i], alone.size, rtol=1e-12)
         assert_allclose(together.tanks.conversion[i], alone.tanks.conversion, rtol=1e-10)
@@ -150,7 +150,7 @@ def test_many_cases_are_the_single_ones(number):
 
 def test_tanks_that_stay_idle_are_named():
     # r = k (1 - X) X^2 and no product in the feed: below X = 1/2 only the last tank can work.
-    law = power_law(ISOMERS, {"A": 1, "R": 2}, 1e-6)
+    law = rate_law(ISOMERS, {"A": 1, "R": 2}, 1e-6)
     feed = liquid(ISOMERS, {"A": 1000})
     one = size(ISOMERS, feed, law, 0.2, StirredTank())
     three = size(ISOMERS, feed, law, 0.2, TanksInSeries(3))
@@ -163,7 +163,7 @@ def test_tanks_that_stay_idle_are_named():
 def test_first_crossing_close_to_the_single_tank():
     # A rate that rises all the way leaves almost everything to the last tank; the balances hold.
     reactions = reaction_set({"A": -1, "R": 0.5})
-    law = power_law(reactions, {"R": 2}, 1e-2, driving="mole-fraction")
+    law = rate_law(reactions, {"R": 2}, 1e-2, driving="mole-fraction")
     feed = gas(reactions, {"A": 7.47, "R": 0.269}, 600.0, 1e6)
     for number in (2, 3, 10):
         found = size(reactions, feed, law, 0.998, TanksInSeries(number))

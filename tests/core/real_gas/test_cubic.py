@@ -6,6 +6,7 @@ from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
 from core.constants import GAS_CONSTANT as R
+from core.numerics.straight_line import record
 from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation
 
@@ -193,3 +194,28 @@ def test_ammonia_condenses_out_of_synthesis_gas_in_the_cold(model):
     assert would_condense(eq, t, p, n).tolist()[:3] == [True, False, False]
     # The dew point falls between: the vapour pressure of ammonia at 300 K is 10.6 bar (common
     # practice), so that a third of it does not condense at 10 bar and does at 100.
+
+
+@pytest.mark.parametrize("interaction", [None, K_IJ])
+@pytest.mark.parametrize("model", MODELS)
+def test_a_recorded_gas_is_that_of_the_arrays(model, interaction):
+    rng = np.random.default_rng(3)
+    eos = equation(model, interaction)
+
+    def of_pressure(_, t, p, *y):
+        z, ln_phi = eos.record(t, y, pressure=p)
+        return [z, *ln_phi]
+
+    def of_volume(_, t, v, *y):
+        z, ln_phi = eos.record(t, y, molar_volume=v)
+        return [z, *ln_phi]
+
+    at_pressure, at_volume = (record(f, 8).on_floats() for f in (of_pressure, of_volume))
+    for _ in range(200):
+        y = rng.dirichlet(np.ones(5))
+        t, p = rng.uniform(450, 1100), 10 ** rng.uniform(4, 7.3)
+        state = eos.state(np.array([t]), np.array([p]), y[None])
+        z = float(state.compressibility[0])
+        expected = pytest.approx([z, *state.ln_fugacity_coefficients[0]], rel=1e-10, abs=1e-11)
+        assert at_pressure(0.0, np.array([t, p, *y])) == expected
+        assert at_volume(0.0, np.array([t, z * R * t / p, *y])) == expected

@@ -7,9 +7,9 @@ from numpy.testing import assert_allclose
 from core.errors import Refused
 from core.rates.constants import Arrhenius, Constant
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff, coefficient_sum
-from core.rates.power_law import ByAffinity, PowerLaw, ReverseConstant
 from core.rates.power_product import PowerProduct
-from tests.core.reactors.builders import gas, liquid, power_law, reaction_set, vector
+from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
+from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, vector
 
 R = 8.31446261815324
 NAMES = {"A": -1, "B": -2, "R": 1, "S": 1, "I": 0}
@@ -48,7 +48,7 @@ def refusal(law, feed=FEED):
     ("driving", "forces"), [("concentration", C), ("partial-pressure", P), ("mole-fraction", Y)]
 )
 def test_forward_rate_by_its_definition(driving, forces):
-    law = power_law(REACTIONS, {"A": 1.5, "B": -0.5, "I": 0.25}, 3e-3, driving=driving)
+    law = rate_law(REACTIONS, {"A": 1.5, "B": -0.5, "I": 0.25}, 3e-3, driving=driving)
     expected = 3e-3 * forces[0] ** 1.5 * forces[1] ** -0.5 * forces[4] ** 0.25
     assert_allclose(value(law.forward(REACTIONS, 0, FEED)), expected, rtol=1e-13)
 
@@ -57,7 +57,7 @@ def test_forward_rate_by_its_definition(driving, forces):
 @pytest.mark.parametrize("floor", [1e-30, 1e30])
 def test_floor_above_and_below(driving, floor):
     forces = {"concentration": C, "partial-pressure": P, "mole-fraction": Y}[driving]
-    law = power_law(REACTIONS, {"A": 1, "R": -2}, 0.1, driving=driving, floors={"R": floor})
+    law = rate_law(REACTIONS, {"A": 1, "R": -2}, 0.1, driving=driving, floors={"R": floor})
     expected = 0.1 * forces[0] * max(forces[2], floor) ** -2.0
     assert_allclose(value(law.forward(REACTIONS, 0, FEED)), expected, rtol=1e-12)
     without = C.copy()
@@ -67,7 +67,7 @@ def test_floor_above_and_below(driving, floor):
 
 def test_own_reverse_constant():
     reverse = ReverseConstant(Arrhenius(1e3, 40e3), vector(REACTIONS, {"R": 1, "I": -1}))
-    law = power_law(REACTIONS, {"A": 1, "B": 1}, 1e-5, reverse=reverse, activity=0.3)
+    law = rate_law(REACTIONS, {"A": 1, "B": 1}, 1e-5, reverse=reverse, activity=0.3)
     backward = 1e3 * np.exp(-40e3 / (R * 600)) * C[2] / C[4]
     ratio = law.reverse_over_forward(REACTIONS, 0, FEED)
     assert_allclose(value(ratio), backward / (1e-5 * C[0] * C[1]), rtol=1e-13)
@@ -78,7 +78,7 @@ def test_own_reverse_constant():
 def test_affinity_to_a_power(exponent):
     k_p = 4e-6
     reverse = ByAffinity(EquilibriumConstant("pressure", Constant(k_p)), exponent)
-    law = power_law(REACTIONS, {"A": 1}, reverse=reverse)
+    law = rate_law(REACTIONS, {"A": 1}, reverse=reverse)
     # S is condensed: unit activity.
     q = P[2] / (P[0] * P[1] ** 2)
     ratio = value(law.reverse_over_forward(REACTIONS, 0, FEED))
@@ -112,7 +112,7 @@ def test_van_t_hoff():
 
 
 def test_an_absent_substance_of_order_zero_counts_nothing():
-    law = PowerLaw(0, np.array([[1.0, 0, 0, 0, 0], [1.0, 0, 0.5, 0, 0]]), Constant(1.0))
+    law = RateLaw(0, np.array([[1.0, 0, 0, 0, 0], [1.0, 0, 0.5, 0, 0]]), Constant(1.0))
     product = law.forward(REACTIONS, 0, FEED).over((2,))
     without = C.copy()
     without[2] = 0.0
@@ -129,49 +129,49 @@ def test_orders_that_cancel_leave_nothing():
 
 
 def test_rate_of_a_substance_that_does_not_react():
-    law = power_law(REACTIONS, {"A": 1}, of="I")
+    law = rate_law(REACTIONS, {"A": 1}, of="I")
     fault = refusal(law)
     assert (fault.code, fault.subject) == ("rate-of-absent-substance", (*RATE, "of"))
 
 
 def test_order_of_a_condensed_substance():
-    fault = refusal(power_law(REACTIONS, {"A": 1, "S": 1}))
+    fault = refusal(rate_law(REACTIONS, {"A": 1, "S": 1}))
     assert (fault.code, fault.subject) == ("order-outside-phase", (*RATE, "orders", "S"))
     reverse = ReverseConstant(Constant(1.0), vector(REACTIONS, {"S": 1}))
-    fault = refusal(power_law(REACTIONS, {"A": 1}, reverse=reverse))
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, reverse=reverse))
     assert fault.subject == (*RATE, "reversible", "orders", "S")
 
 
 def test_partial_pressures_of_a_liquid():
     dissolved = reaction_set({"A": -1, "R": 1})
     with pytest.raises(Refused) as raised:
-        power_law(dissolved, {"A": 1}, driving="partial-pressure").check(
+        rate_law(dissolved, {"A": 1}, driving="partial-pressure").check(
             dissolved, 0, liquid(dissolved, {"A": 1})
         )
     assert raised.value.faults[0].code == "driving-needs-gas"
 
 
 def test_floor_that_would_do_nothing_or_makes_no_sense():
-    fault = refusal(power_law(REACTIONS, {"A": 1}, floors={"A": 1.0}))
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, floors={"A": 1.0}))
     assert (fault.code, fault.subject) == ("floor-without-negative-order", (*RATE, "floor", "A"))
-    fault = refusal(power_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": -1.0}))
+    fault = refusal(rate_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": -1.0}))
     assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "floor", "R"))
-    refusal(power_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": np.nan}))
+    refusal(rate_law(REACTIONS, {"A": 1, "R": -1}, floors={"R": np.nan}))
 
 
 @pytest.mark.parametrize("bad", [0.0, -1.0, np.nan])
 def test_factors_above_zero(bad):
-    fault = refusal(power_law(REACTIONS, {"A": 1}, activity=bad))
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, activity=bad))
     assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "activity"))
-    fault = refusal(power_law(REACTIONS, {"A": 1}, effectiveness=bad))
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, effectiveness=bad))
     assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "effectiveness"))
     affinity = ByAffinity(EquilibriumConstant("pressure", Constant(1.0)), bad)
-    fault = refusal(power_law(REACTIONS, {"A": 1}, reverse=affinity))
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, reverse=affinity))
     assert fault.subject == (*RATE, "reversible", "affinity_exponent")
 
 
 def test_orders_must_be_numbers():
-    fault = refusal(power_law(REACTIONS, {"A": np.nan}))
+    fault = refusal(rate_law(REACTIONS, {"A": np.nan}))
     assert (fault.code, fault.subject) == ("impossible-value", (*RATE, "orders"))
 
 
@@ -220,10 +220,10 @@ def test_a_gas_that_leaves_a_liquid_has_no_place_in_its_equilibrium():
 def test_needs_a_temperature_only_where_something_depends_on_it():
     constant, arrhenius = Constant(1.0), Arrhenius(1.0, 1e3)
     orders = np.array([1.0])
-    assert not PowerLaw(0, orders, constant).needs_temperature
-    assert PowerLaw(0, orders, arrhenius).needs_temperature
-    assert PowerLaw(
+    assert not RateLaw(0, orders, constant).needs_temperature
+    assert RateLaw(0, orders, arrhenius).needs_temperature
+    assert RateLaw(
         0, orders, constant, reverse=ReverseConstant(arrhenius, orders)
     ).needs_temperature
     hot = EquilibriumConstant("concentration", VantHoff(300.0, 1.0, 1e3))
-    assert PowerLaw(0, orders, constant, reverse=ByAffinity(hot)).needs_temperature
+    assert RateLaw(0, orders, constant, reverse=ByAffinity(hot)).needs_temperature

@@ -3,7 +3,7 @@ from numpy.testing import assert_allclose
 
 from core.rates.equilibrium_constant import expected_unit_exponents as of_equilibrium
 from core.rates.equilibrium_constant import expected_unit_parts as equilibrium_parts
-from core.rates.power_law import expected_unit_exponents, expected_unit_parts
+from core.rates.rate_law import expected_unit_exponents, expected_unit_parts
 
 # Exponents of (kg, m, s, K, mol) of each unit named in the parts.
 UNITS = {
