@@ -21,7 +21,7 @@ one state, for many cases, on intervals, and gives its Jacobian.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Literal
@@ -35,7 +35,6 @@ from core.numerics.straight_line import Number, StraightLine, record
 from core.rates.local_rate import Place, local_rate
 from core.reactors.friction import Friction
 from core.reactors.problem import (
-    Adiabatic,
     Batch,
     Exchange,
     Isothermal,
@@ -172,19 +171,22 @@ class Balances:
     @cached_property
     def slopes(self) -> StraightLine:
         """D state/dx of (x, state)."""
-        return record(lambda x, *y: self._slopes(x, _State(self, y)), 1 + self.layout.size)
+        return self.recorded(self._slopes)
 
     @cached_property
     def rates(self) -> StraightLine:
         """Rates of extent, mol/s per m3 of reactor, kg of catalyst (batch: per m3)."""
-        return record(lambda x, *y: _State(self, y, x).rates(), 1 + self.layout.size)
+        return self.recorded(State.rates)
 
-    def _slopes(self, x: Number, state: _State) -> list[Number]:
-        state = _State(self, state.y, x)
+    def recorded(self, calculation: Callable[[State], Sequence[Number]]) -> StraightLine:
+        """Return what follows from a state, as straight-line code of (x, state)."""
+        return record(lambda x, *y: calculation(State(self, y, x)), 1 + self.layout.size)
+
+    def _slopes(self, state: State) -> list[Number]:
         rates = state.rates()
         per: Number = state.volume if self.feed.batch else 1.0
         nu = self.problem.reactions.nu
-        fed = self._fed(x)
+        fed = self.fed
         slopes = []
         for i in range(len(state.flows)):
             made: Number = 0.0
@@ -224,12 +226,14 @@ class Balances:
             )
         return per / float(density)
 
-    def _fed(self, x: Number) -> Stream | None:  # noqa: ARG002 - until the feed ends
+    @property
+    def fed(self) -> Stream | None:
+        """What flows into a batch while it reacts."""
         reactor = self.problem.reactor
         return reactor.fed.stream if isinstance(reactor, Batch) and reactor.fed else None
 
     def _heating(
-        self, state: _State, rates: Sequence[Number], per: Number, fed: Stream | None
+        self, state: State, rates: Sequence[Number], per: Number, fed: Stream | None
     ) -> Number:
         """Return dT/dx."""
         heats, t = self.heats, state.temperature
@@ -272,8 +276,17 @@ class Balances:
 
 
 @dataclass(frozen=True, eq=False)
-class _State:
-    """A state and what follows from it."""
+class State:
+    """A state and what follows from it, in numbers of any kind.
+
+    Attributes
+    ----------
+    balances : Balances
+    y : sequence of Number
+        As the layout has it.
+    x : Number
+        Where it is: the independent variable.
+    """
 
     balances: Balances
     y: Sequence[Number]
@@ -281,6 +294,7 @@ class _State:
 
     @property
     def flows(self) -> Sequence[Number]:
+        """Of the substances, mol/s; of a batch the amounts, mol."""
         return self.y[: self.balances.layout.substances]
 
     @property
@@ -291,6 +305,7 @@ class _State:
 
     @property
     def temperature(self) -> Number:
+        """K; None where nothing says."""
         at = self.balances.layout.temperature
         if at is not None:
             return self.y[at]
@@ -300,6 +315,10 @@ class _State:
 
     @property
     def pressure(self) -> Number:
+        """Pa; of a gas that is held at its volume it follows from the state."""
+        if self.held:
+            rt = self.temperature * GAS_CONSTANT
+            return self.in_phase * rt * self.compressibility / self.volume
         at = self.balances.layout.pressure
         return self.balances.feed.pressure if at is None else self.y[at]
 
@@ -333,21 +352,27 @@ class _State:
 
     @property
     def compressibility(self) -> Number:
+        """Z of a gas."""
         return self._gas[0]
+
+    @property
+    def ln_fugacity_coefficients(self) -> Sequence[Number] | None:
+        """Of the substances, where a gas is not ideal."""
+        return self._gas[1]
 
     @cached_property
     def volume(self) -> Number:
         """m3/s, of a batch m3, of the phase."""
-        feed, reactor = self.balances.feed, self.balances.problem.reactor
+        feed = self.balances.feed
         if feed.phase == "liquid" or self.held:
             v = feed.volumetric_flow
             assert v is not None
-            start = float(v)
-            if isinstance(reactor, Batch) and reactor.fed is not None:
-                added = reactor.fed.stream.volumetric_flow
-                assert added is not None
-                return start + float(added) * self.x
-            return start
+            fed = self.balances.fed
+            if fed is None:
+                return float(v)
+            added = fed.volumetric_flow
+            assert added is not None
+            return float(v) + float(added) * self.x
         rt = self.temperature * GAS_CONSTANT
         return self.in_phase * rt * self.compressibility / self.pressure
 
@@ -357,16 +382,17 @@ class _State:
         masses = self.balances.problem.reactions.molar_masses
         return float(self.balances.feed.flows @ masses) / self.volume
 
-    def rates(self) -> list[Number]:
-        balances = self.balances
-        problem, feed = balances.problem, balances.feed
+    @cached_property
+    def place(self) -> Place:
+        """The fluid as rate laws see it."""
+        feed = self.balances.feed
         if feed.phase == "gas" and not self.held:
             total = self.pressure / (self.temperature * (GAS_CONSTANT * self.compressibility))
             per_flow = total / self.in_phase
         else:
             per_flow = 1.0 / self.volume
             total = self.in_phase * per_flow
-        place = Place(
+        return Place(
             [flow * per_flow for flow in self.flows],
             feed.in_phase,
             feed.phase == "gas",
@@ -374,8 +400,13 @@ class _State:
             self.temperature,
             *self._gas,
         )
+
+    def rates(self) -> list[Number]:
+        """Rates of extent, mol/s per m3 of reactor or kg of catalyst."""
+        balances = self.balances
+        problem = balances.problem
         return [
-            local_rate(law, problem.reactions, j, place) * self._factor(law.per, j)
+            local_rate(law, problem.reactions, j, self.place) * self._factor(law.per, j)
             for j, law in enumerate(problem.laws)
         ]
 
@@ -432,6 +463,3 @@ def rate_factor(problem: ReactorProblem, basis: Basis, per: str, reaction: int) 
     if per == "catalyst-mass":
         return float(bulk)  # type: ignore[arg-type]
     return float(void) if per == "fluid-volume" else 1.0  # type: ignore[arg-type]
-
-
-__all__ = ["Adiabatic", "Balances", "Basis", "Layout", "rate_factor"]
