@@ -235,9 +235,7 @@ def _runs(boxes: _Boxes) -> _Boxes:
     )
     ends = np.append(begins[1:], True)
     first, last = boxes.take(begins), boxes.take(ends)
-    return _Boxes(
-        first.lower, last.upper, first.at_lower, last.at_upper, first.case, first.found
-    )
+    return _Boxes(first.lower, last.upper, first.at_lower, last.at_upper, first.case, first.found)
 
 
 def _signs(problem: Enclosed, runs: _Boxes) -> tuple[IntArray, IntArray]:

@@ -45,7 +45,7 @@ def _loosely(lower: Any, upper: Any) -> Bounds:
     return lower - (_ULPS * np.abs(lower) + _TINY), upper + (_ULPS * np.abs(upper) + _TINY)
 
 
-def _product(a: Bounds, b: Bounds) -> Bounds:
+def product(a: Bounds, b: Bounds) -> Bounds:
     """Return bounds of a product of any signs."""
     p, q, r, s = a[0] * b[0], a[0] * b[1], a[1] * b[0], a[1] * b[1]
     low = np.minimum(np.minimum(p, q), np.minimum(r, s))
@@ -53,7 +53,8 @@ def _product(a: Bounds, b: Bounds) -> Bounds:
     return outward(low, high)
 
 
-def _sum(a: Bounds, b: Bounds) -> Bounds:
+def added(a: Bounds, b: Bounds) -> Bounds:
+    """Return bounds of a sum."""
     return outward(a[0] + b[0], a[1] + b[1])
 
 
@@ -113,7 +114,7 @@ class Enclosure:
         """Bounds of the derivative by the coordinate."""
         if self._slope is None:
             assert self._relative is not None
-            self._slope = _product(self._relative, self.values)
+            self._slope = product(self._relative, self.values)
         return self._slope
 
     @property
@@ -121,7 +122,7 @@ class Enclosure:
         """Bounds of the derivative over the value; infinite where its sign is not known."""
         if self._relative is None:
             assert self._slope is not None
-            low, high = _quotient(self._slope, self.values)
+            low, high = quotient(self._slope, self.values)
             one_sign = (self.lower > 0) | (self.upper < 0)
             self._relative = np.where(one_sign, low, -_INF), np.where(one_sign, high, _INF)
         return self._relative
@@ -138,16 +139,16 @@ class Enclosure:
     def __add__(self, other: Any) -> Enclosure:
         if not isinstance(other, Enclosure):
             return self._shifted(other)
-        low, high = _sum(self.values, other.values)
+        low, high = added(self.values, other.values)
         if self.sign == 0 or self.sign != other.sign:
-            slope = _sum(self.slope, other.slope)
+            slope = added(self.slope, other.slope)
             if self.sign * other.sign == 0:
                 return Enclosure(low, high, slope)
             return Enclosure(low, high, slope, _of_difference(self, other, low, high))
         # Shares of the sum that the first has; relative slopes are averaged by them.
         near, far = (self, other) if self.sign > 0 else (-self, -other)
-        least = np.nextafter(near.lower / (near.lower + far.upper), -_INF)
-        most = np.nextafter(near.upper / (near.upper + far.lower), _INF)
+        least = np.nextafter(np.divide(near.lower, near.lower + far.upper), -_INF)
+        most = np.nextafter(np.divide(near.upper, near.upper + far.lower), _INF)
         a, b = self.relative, other.relative
         lower = np.minimum(b[0] + least * (a[0] - b[0]), b[0] + most * (a[0] - b[0]))
         upper = np.maximum(b[1] + least * (a[1] - b[1]), b[1] + most * (a[1] - b[1]))
@@ -165,7 +166,7 @@ class Enclosure:
             # v/(v + c) has no turning point where neither is zero.
             p, q = self.lower / low, self.upper / high
             share = _loosely(np.minimum(p, q), np.maximum(p, q))
-            shifted._relative = _product(self.relative, share)
+            shifted._relative = product(self.relative, share)
         elif self._slope is None:
             shifted._slope = self.slope
         return shifted
@@ -184,11 +185,11 @@ class Enclosure:
         if self.sign > 0 and other.sign > 0:
             low, high = outward(self.lower * other.lower, self.upper * other.upper)
         else:
-            low, high = _product(self.values, other.values)
-        relative = _sum(self.relative, other.relative)
+            low, high = product(self.values, other.values)
+        relative = added(self.relative, other.relative)
         if self.sign and other.sign:
             return Enclosure(low, high, relative=relative)
-        slope = _sum(_product(self.slope, other.values), _product(self.values, other.slope))
+        slope = added(product(self.slope, other.values), product(self.values, other.slope))
         return Enclosure(low, high, slope, relative)
 
     __rmul__ = __mul__
@@ -196,14 +197,14 @@ class Enclosure:
     def __truediv__(self, other: Any) -> Enclosure:
         if not isinstance(other, Enclosure):
             return self._over(other)
-        low, high = _quotient(self.values, other.values)
+        low, high = quotient(self.values, other.values)
         b = other.relative
-        relative = _sum(self.relative, (-b[1], -b[0]))
+        relative = added(self.relative, (-b[1], -b[0]))
         if self.sign and other.sign:
             return Enclosure(low, high, relative=relative)
-        there = _product((low, high), other.slope)
-        change = _sum(self.slope, (-there[1], -there[0]))
-        return Enclosure(low, high, _quotient(change, other.values), relative)
+        there = product((low, high), other.slope)
+        change = added(self.slope, (-there[1], -there[0]))
+        return Enclosure(low, high, quotient(change, other.values), relative)
 
     def _over(self, c: float | FloatArray) -> Enclosure:
         def over(bounds: Bounds) -> Bounds:
@@ -215,7 +216,7 @@ class Enclosure:
         return Enclosure(low, high, slope, self._relative)
 
     def __rtruediv__(self, other: Any) -> Enclosure:
-        low, high = _quotient((other, other), self.values)
+        low, high = quotient((other, other), self.values)
         b = self.relative
         return Enclosure(low, high, relative=(-b[1], -b[0]))
 
@@ -244,10 +245,11 @@ def _of_difference(a: Enclosure, b: Enclosure, low: Any, high: Any) -> Bounds:
     return np.where(known, lowest - size, -_INF), np.where(known, highest + size, _INF)
 
 
-def _quotient(a: Bounds, b: Bounds) -> Bounds:
+def quotient(a: Bounds, b: Bounds) -> Bounds:
     """Return bounds of a quotient; infinite where the denominator may be zero."""
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        p, q, r, s = a[0] / b[0], a[0] / b[1], a[1] / b[0], a[1] / b[1]
+        p, q = np.divide(a[0], b[0]), np.divide(a[0], b[1])
+        r, s = np.divide(a[1], b[0]), np.divide(a[1], b[1])
         low = np.minimum(np.minimum(p, q), np.minimum(r, s))
         high = np.maximum(np.maximum(p, q), np.maximum(r, s))
         one_sign = (np.asarray(b[0]) > 0) | (np.asarray(b[1]) < 0)
@@ -281,7 +283,7 @@ def _exp(a: Enclosure) -> Enclosure:
 
 def _expm1(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.expm1(a.lower), np.expm1(np.minimum(a.upper, LARGEST_EXPONENT)))
-    return Enclosure(low, high, _product(_exp(a).values, a.slope))
+    return Enclosure(low, high, product(_exp(a).values, a.slope))
 
 
 def _log(a: Enclosure) -> Enclosure:
@@ -316,12 +318,13 @@ def _amount_to(a: Any, power: Any) -> Enclosure:
     return found
 
 
-def _as_enclosure(a: Any) -> Enclosure:
+def enclosed(a: Any) -> Enclosure:
+    """Return a number as an enclosure of itself, and an enclosure as it is."""
     return a if isinstance(a, Enclosure) else Enclosure(a, a, (0.0, 0.0), (0.0, 0.0))
 
 
 def _below(a: Any, b: Any, then: Any, otherwise: Any) -> Enclosure:
-    a, b, then, otherwise = (_as_enclosure(v) for v in (a, b, then, otherwise))
+    a, b, then, otherwise = (enclosed(v) for v in (a, b, then, otherwise))
     certain, never = np.asarray(a.upper < b.lower), np.asarray(a.lower >= b.upper)
     if certain.all():
         return then
@@ -346,23 +349,23 @@ def _below(a: Any, b: Any, then: Any, otherwise: Any) -> Enclosure:
 
 def _larger(a: Any, b: Any) -> Enclosure:
     found = _below(a, b, b, a)
-    a, b = _as_enclosure(a), _as_enclosure(b)
+    a, b = enclosed(a), enclosed(b)
     low = np.maximum(found.lower, np.maximum(a.lower, b.lower))
     return Enclosure(low, found.upper, found._slope, found._relative)
 
 
 def _smaller(a: Any, b: Any) -> Enclosure:
     found = _below(a, b, a, b)
-    a, b = _as_enclosure(a), _as_enclosure(b)
+    a, b = enclosed(a), enclosed(b)
     high = np.minimum(found.upper, np.minimum(a.upper, b.upper))
     return Enclosure(found.lower, high, found._slope, found._relative)
 
 
 def _tanh(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.tanh(a.lower), np.tanh(a.upper))
-    square = _product((low, high), (low, high))
+    square = product((low, high), (low, high))
     rest = np.maximum(1.0 - square[1] - _ULPS, 0.0), 1.0 - np.maximum(square[0], 0.0) + _ULPS
-    return Enclosure(low, high, _product(rest, a.slope))
+    return Enclosure(low, high, product(rest, a.slope))
 
 
 def _bessel_ratio(a: Enclosure) -> Enclosure:
@@ -374,7 +377,7 @@ def _bessel_ratio(a: Enclosure) -> Enclosure:
 
     low, high = _loosely(bessel_ratio(a.lower), bessel_ratio(a.upper))
     rest = np.maximum(slope(a.upper) - _ULPS, 0.0), slope(a.lower) + _ULPS
-    return Enclosure(low, high, _product(rest, a.slope))
+    return Enclosure(low, high, product(rest, a.slope))
 
 
 def _quiet(f: Callable[..., Any]) -> Callable[..., Any]:
