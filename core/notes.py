@@ -184,6 +184,16 @@ NOTES: dict[str, Entry] = {
         "Unstable steady state",
         "The tank leaves the state it is sized for by itself; it would need control to stay there.",
     ),
+    "several-steady-states": Entry(
+        "Several steady states",
+        "The tank can stand in more than one state at the same feed. Which one hangs on how it was"
+        " started; a disturbance can take it from one to another.",
+    ),
+    "steady-state-beyond-data": Entry(
+        "A steady state beyond the data",
+        "The balances show a further steady state at a temperature for which heat capacities are"
+        " not known. State 'heat_capacity' under 'species' that reaches further.",
+    ),
     "product-needed-to-start": Entry(
         "Product needed to start",
         "The feed alone does not react. The tank must be started with product in it.",

@@ -361,13 +361,16 @@ class StraightLine:
         found: Callable[..., list[Any]] = self._bound("arrays", _ARRAY, case)
         return found
 
-    def on(self, operations: Mapping[str, Callable[..., Any]]) -> Callable[..., list[Any]]:
+    def on(
+        self, operations: Mapping[str, Callable[..., Any]], case: np.ndarray | None = None
+    ) -> Callable[..., list[Any]]:
         """Return f(x, y) for numbers of any kind with arithmetic and these operations.
 
         They are ``exp``, ``expm1``, ``log``, ``log1p``, ``sqrt``, ``tanh``,
-        ``bessel_ratio``, ``max``, ``min``, ``to`` (to a power), ``amount_to`` and ``below``.
+        ``bessel_ratio``, ``max``, ``min``, ``to`` (to a power), ``amount_to`` and ``below``;
+        ``case`` as in :meth:`on_arrays`.
         """
-        found: Callable[..., list[Any]] = self._bound("arrays", operations, None)
+        found: Callable[..., list[Any]] = self._bound("arrays", operations, case)
         return found
 
     def _bound(self, style: str, operations: Mapping[str, Any], case: np.ndarray | None) -> Any:

@@ -206,7 +206,7 @@ class Balances:
             thermal = self.problem.thermal
             assert isinstance(thermal, Exchange)
             against = -1.0 if thermal.arrangement == "counter-current" else 1.0
-            passed = self._conductance * per * (state.temperature - state.y[layout.utility])
+            passed = self.conductance * per * (state.temperature - state.y[layout.utility])
             slopes.append(against * passed / thermal.utility_heat_capacity_flow)
         if layout.pressure is not None:
             assert self.friction is not None
@@ -214,7 +214,7 @@ class Balances:
         return slopes
 
     @property
-    def _conductance(self) -> float:
+    def conductance(self) -> float:
         """U a per unit of the independent variable, W/K."""
         thermal, reactor = self.problem.thermal, self.problem.reactor
         assert isinstance(thermal, Exchange)
@@ -276,7 +276,7 @@ class Balances:
             there = (
                 thermal.utility_temperature if layout.utility is None else state.y[layout.utility]
             )
-            gained = gained + self._conductance * per * (there - t)
+            gained = gained + self.conductance * per * (there - t)
         if fed is not None:
             assert fed.temperature is not None
             for flow, cp in zip(fed.flows.tolist(), heats.heat_capacities, strict=True):
