@@ -184,6 +184,27 @@ NOTES: dict[str, Entry] = {
         "Unstable steady state",
         "The tank leaves the state it is sized for by itself; it would need control to stay there.",
     ),
+    "several-steady-states": Entry(
+        "More than one steady state",
+        "A stirred tank can rest in any of its stable states, and a disturbance or another way of"
+        " starting can take it from one to another. Runaway is not assessed; follow local codes and"
+        " licensed practice.",
+    ),
+    "search-not-proven": Entry(
+        "Search that proves nothing",
+        "The steady states are those that a search found; there may be others.",
+    ),
+    "temperature-limit-exceeded": Entry(
+        "Temperature limit exceeded",
+        "Somewhere the reactor is hotter than the limit stated in 'temperature_limit'. Runaway,"
+        " decomposition and relief are not assessed; follow local codes and licensed practice.",
+    ),
+    "accumulated-reactant": Entry(
+        "Reactant accumulates in a fed batch",
+        "What is fed and has not reacted yet would heat the batch if cooling stopped, even with the"
+        " feed shut. A screening value: decomposition, gas and relief are not assessed; follow"
+        " local codes and licensed practice.",
+    ),
     "product-needed-to-start": Entry(
         "Product needed to start",
         "The feed alone does not react. The tank must be started with product in it.",
