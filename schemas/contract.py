@@ -23,8 +23,8 @@ from schemas.equilibrium_answer import EquilibriumAnswer
 from schemas.examples import EXAMPLES
 from schemas.fields import LimitSchema, StrictField, UncertainSchema, quantity_components
 from schemas.problem import ProblemSchema
+from schemas.reactors.volume import VolumeAnswer, VolumeRequest
 from schemas.stoichiometric_table import StoichiometricTableAnswer, StoichiometricTableRequest
-from schemas.volume import VolumeAnswer, VolumeRequest
 
 JSON = "application/json"
 CSV = "text/csv"
@@ -100,8 +100,8 @@ OPERATIONS = (
         "volume",
         "POST",
         "/v1/volume",
-        "the reactor size that a target conversion needs",
-        (JSON,),
+        "the reactor size that a target needs",
+        (JSON, CSV, HTML),
         VolumeRequest,
         VolumeAnswer,
     ),
