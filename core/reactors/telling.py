@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -23,10 +23,12 @@ from core.reactors.problem import (
     ReactorProblem,
 )
 from core.reactors.reacted import (
+    Accumulation,
     ConversionLimit,
     Hottest,
     Reacted,
     ReactorProfile,
+    StageReached,
     SteadyStates,
 )
 from core.real_gas.witness import witness_of
@@ -59,6 +61,10 @@ class Course:
         s.
     limit : ConversionLimit or None
     steady_states : SteadyStates or None
+    stages : tuple of StageReached
+        Of tanks in series, of which the last is the one place.
+    accumulation : Accumulation or None
+        Of a fed batch.
     notes : tuple of Note
     """
 
@@ -70,7 +76,14 @@ class Course:
     residence_time: float | None = None
     limit: ConversionLimit | None = None
     steady_states: SteadyStates | None = None
+    stages: tuple[StageReached, ...] = ()
+    accumulation: Accumulation | None = None
     notes: tuple[Note, ...] = ()
+
+    @property
+    def is_tank(self) -> bool:
+        """Whether it has one place alone."""
+        return self.steady_states is not None or bool(self.stages)
 
     @property
     def balances(self) -> Balances:
@@ -108,7 +121,6 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
         space_time = volume / float(v0)
     extents, told = _extents(problem, course, seen)
     found = energetics_of(problem, Outcome(outlet, extents, course.limit))
-    tank = course.steady_states is not None
     constants = [(j, c) for j, c in enumerate(problem.constants) if c is not None]
     t = feed.temperature
     of_constants: dict[str, StandardProperties] = {}
@@ -131,12 +143,16 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
         mean_residence_time=course.residence_time,
         key_rate=float(-(seen.rates[-1] @ problem.reactions.nu[:, problem.key])),
         by_catalyst_mass=basis == "catalyst_mass",
-        hottest=None if tank else hottest(problem, course, seen),
+        hottest=None if course.is_tank else hottest(problem, course, seen),
         utility_outlet_temperature=_utility_outlet(problem, seen),
         heat=found.heat,
         equilibrium=found.equilibrium,
-        profile=None if tank or points == 0 else profile_of(problem, course, seen, points),
+        profile=None
+        if course.is_tank or points == 0
+        else profile_of(problem, course, seen, points),
         steady_states=course.steady_states,
+        stages=course.stages,
+        accumulation=course.accumulation,
         properties=tuple(used.values()),
         method=course.method,
         evaluations=course.evaluations,
@@ -330,8 +346,3 @@ def assumptions(problem: ReactorProblem, balances: Balances) -> tuple[Note, ...]
     if problem.gas is not None and not isinstance(problem.thermal, Isothermal):
         found.append(_ENTHALPY_IDEAL)
     return tuple(found)
-
-
-def replace_feed(problem: ReactorProblem, feed: Stream) -> ReactorProblem:
-    """Return the problem with another feed."""
-    return replace(problem, feed=feed)
