@@ -58,20 +58,21 @@ class ReactorPage:
         size = next(
             (name for name in ("time", "volume", "catalyst_mass") if name in self.result), "volume"
         )
-        verdict = f"{self._converted()} takes {told(self.result.get(size))}"
+        verdict = f"A conversion of {self.key} of {_percent(self.result['conversion'])}"
+        verdict += f" takes {told(self.result.get(size))}"
         verdict += " of catalyst." if size == "catalyst_mass" else "."
         return self._page(f"Size of a {self.what}", verdict)
 
     def of_rating(self) -> Page:
         """Return the page that says what comes out of the reactor."""
-        verdict = f"{self._converted()} comes out of this {self.what}"
+        conversion = _percent(self.result["conversion"])
+        verdict = f"This {self.what} converts {conversion} of {self.key}"
         t = self.result["outlet"].get("temperature")
-        return self._page(
-            f"Rating of a {self.what}", verdict + ("." if t is None else f", at {told(t)}.")
-        )
-
-    def _converted(self) -> str:
-        return f"A conversion of {self.key} of {_percent(self.result['conversion'])}"
+        verdict += "." if t is None else f" and ends at {told(t)}."
+        states = len(self.result.get("steady_states", ()))
+        if states > 1:
+            verdict += f" That is one of {states} steady states."
+        return self._page(f"Rating of a {self.what}", verdict)
 
     def _page(self, title: str, verdict: str) -> Page:
         return Page(
@@ -288,6 +289,14 @@ STAGE_COLUMNS = (
     ("outlet temperature", "outlet/temperature"),
     ("outlet pressure", "outlet/pressure"),
 )
+POINT_COLUMNS = (
+    ("value", "value"),
+    ("conversion", "conversion"),
+    ("outlet temperature", "outlet/temperature"),
+    ("highest temperature", "hottest/temperature"),
+    ("outlet pressure", "outlet/pressure"),
+    ("heat supplied", "heat/duty"),
+)
 STATE_COLUMNS = (
     ("temperature", "temperature"),
     ("conversion", "conversion"),
@@ -338,11 +347,11 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
     if not result["complete"]:
         verdict += " There may be others."
     numbers: Numbers = []
-    for page, one in zip(pages, result["solutions"], strict=True):
-        at = "" if len(pages) == 1 else f", at {told(one['value'])}"
-        if not at:
-            numbers.append((free, one["value"]))
-        numbers += [(f"{words}{at}", number) for words, number in page.numbers()]
+    tables: list[tuple[str, Table]] = []
+    if len(pages) == 1:
+        numbers = [(free, result["solutions"][0]["value"]), *first.numbers()]
+    else:
+        tables.append(("Where the target is met", _rows(result["solutions"], POINT_COLUMNS)))
     optimum = result.get("optimum")
     if optimum is not None:
         numbers.append((f"{free} of the largest conversion", optimum["value"]))
@@ -350,7 +359,6 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
     plots: list[Plot] = []
     if "curve" in result:
         plots.append(_points_plot(first.key, free, result))
-    tables: list[tuple[str, Table]] = []
     for page, one in zip(pages, result["solutions"], strict=True):
         if len(pages) == 1:
             plots += page.plots()
