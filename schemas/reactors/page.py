@@ -177,11 +177,14 @@ class ReactorPage:
             yield reciprocal
         warm = {
             words: name
-            for words, name in (("reactor", "temperature"), ("utility", "utility_temperature"))
+            for words, name in (
+                ("the reactor", "temperature"),
+                ("the utility", "utility_temperature"),
+            )
             if name in columns
         }
         if any(_moves(columns[name], self._zero("temperature")) for name in warm.values()):
-            yield _plot("Temperature along the way", table, where, warm, "temperature")
+            yield _plot("Temperature along the way", table, where, warm, "temperature", most=2)
         if "pressure" in columns and _moves(columns["pressure"], self._zero("pressure")):
             yield _plot(
                 "Pressure along the way", table, where, {"pressure": "pressure"}, "pressure"
@@ -194,13 +197,15 @@ class ReactorPage:
         return -scale.offset / scale.factor
 
     def _composition_plot(self, table: Table, where: str) -> Iterator[Plot]:
-        names = self.writer.names
+        nu = self.writer.problem.reactions.nu
+        # An inert that the feed is full of would leave no room for what reacts.
+        names = [n for i, n in enumerate(self.writer.names) if nu[:, i].any()]
         shares = {n: f"mole fraction {n}" for n in names if f"mole fraction {n}" in table.columns}
         word = self.writer.words.flow
         each = shares or {n: f"{word} {n}" for n in names if f"{word} {n}" in table.columns}
         if each:
             what = "mole fraction" if shares else word
-            yield _plot("Composition along the way", table, where, each, what)
+            yield _plot("Composition along the way", table, where, each, what, most=3)
 
     def _reciprocal(self, table: Table) -> Plot | None:
         """Return 1/rate against conversion, whose area is the size; of one feed alone."""
@@ -401,6 +406,11 @@ def _moves(values: Cells, zero: float) -> bool:
     return bool(there) and max(there) - min(there) > _STILL * max(map(abs, there))
 
 
+def _span(values: Cells) -> float:
+    there = [value for value in values if value is not None]
+    return max(there) - min(there) if there else 0.0
+
+
 def _interpolated(x: float, xs: Cells, ys: Cells) -> float | None:
     there = [(a, b) for a, b in zip(xs, ys, strict=True) if a is not None and b is not None]
     for (a, b), (c, d) in pairwise(there):
@@ -416,25 +426,28 @@ def _plot(
     columns: Mapping[str, str],
     what: str,
     x_label: str | None = None,
+    most: int = 1,
 ) -> Plot:
-    """Return a plot of columns of a table over one of them."""
+    """Return a plot of columns of a table over one of them; words tell those that change most."""
     x, x_unit = table.columns[where], table.units.get(where, "1")
     unit = table.units.get(next(iter(columns.values())), "1")
     label = x_label or where.replace("_", " ")
-    name, column = max(
-        columns.items(),
-        key=lambda each: max((v for v in table.columns[each[1]] if v is not None), default=0.0),
-    )
-    many = len(columns) > 1
-    said = f"the largest {what} is that of {name}, which" if many else f"the {what}"
-    says = course(said, table.columns[column], x, x_unit, unit, "on the way")
+    ranked = sorted(columns, key=lambda name: -_span(table.columns[columns[name]]))
+    told_of = [name for name in columns if name in ranked[:most]]
+    says = [
+        course(
+            f"the {what} of {name}" if len(columns) > 1 else f"the {what}",
+            *(table.columns[columns[name]], x, x_unit, unit, "on the way"),
+        )
+        for name in told_of
+    ]
     shown = (where, *columns.values())
     return Plot(
         title,
         label if x_unit == "1" else f"{label} [{x_unit}]",
         what if unit == "1" else f"{what} [{unit}]",
         tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
-        says,
+        " ".join(says),
         Table(
             {n: table.columns[n] for n in shown},
             {n: table.units[n] for n in shown if n in table.units},
