@@ -58,20 +58,21 @@ class ReactorPage:
         size = next(
             (name for name in ("time", "volume", "catalyst_mass") if name in self.result), "volume"
         )
-        verdict = f"{self._converted()} takes {told(self.result.get(size))}"
+        verdict = f"A conversion of {self.key} of {_percent(self.result['conversion'])}"
+        verdict += f" takes {told(self.result.get(size))}"
         verdict += " of catalyst." if size == "catalyst_mass" else "."
         return self._page(f"Size of a {self.what}", verdict)
 
     def of_rating(self) -> Page:
         """Return the page that says what comes out of the reactor."""
-        verdict = f"{self._converted()} comes out of this {self.what}"
+        conversion = _percent(self.result["conversion"])
+        verdict = f"This {self.what} converts {conversion} of {self.key}"
         t = self.result["outlet"].get("temperature")
-        return self._page(
-            f"Rating of a {self.what}", verdict + ("." if t is None else f", at {told(t)}.")
-        )
-
-    def _converted(self) -> str:
-        return f"A conversion of {self.key} of {_percent(self.result['conversion'])}"
+        verdict += "." if t is None else f" and ends at {told(t)}."
+        states = len(self.result.get("steady_states", ()))
+        if states > 1:
+            verdict += f" That is one of {states} steady states."
+        return self._page(f"Rating of a {self.what}", verdict)
 
     def _page(self, title: str, verdict: str) -> Page:
         return Page(
@@ -176,11 +177,14 @@ class ReactorPage:
             yield reciprocal
         warm = {
             words: name
-            for words, name in (("reactor", "temperature"), ("utility", "utility_temperature"))
+            for words, name in (
+                ("the reactor", "temperature"),
+                ("the utility", "utility_temperature"),
+            )
             if name in columns
         }
         if any(_moves(columns[name], self._zero("temperature")) for name in warm.values()):
-            yield _plot("Temperature along the way", table, where, warm, "temperature")
+            yield _plot("Temperature along the way", table, where, warm, "temperature", most=2)
         if "pressure" in columns and _moves(columns["pressure"], self._zero("pressure")):
             yield _plot(
                 "Pressure along the way", table, where, {"pressure": "pressure"}, "pressure"
@@ -193,13 +197,15 @@ class ReactorPage:
         return -scale.offset / scale.factor
 
     def _composition_plot(self, table: Table, where: str) -> Iterator[Plot]:
-        names = self.writer.names
+        nu = self.writer.problem.reactions.nu
+        # An inert that the feed is full of would leave no room for what reacts.
+        names = [n for i, n in enumerate(self.writer.names) if nu[:, i].any()]
         shares = {n: f"mole fraction {n}" for n in names if f"mole fraction {n}" in table.columns}
         word = self.writer.words.flow
         each = shares or {n: f"{word} {n}" for n in names if f"{word} {n}" in table.columns}
         if each:
             what = "mole fraction" if shares else word
-            yield _plot("Composition along the way", table, where, each, what)
+            yield _plot("Composition along the way", table, where, each, what, most=3)
 
     def _reciprocal(self, table: Table) -> Plot | None:
         """Return 1/rate against conversion, whose area is the size; of one feed alone."""
@@ -288,6 +294,14 @@ STAGE_COLUMNS = (
     ("outlet temperature", "outlet/temperature"),
     ("outlet pressure", "outlet/pressure"),
 )
+POINT_COLUMNS = (
+    ("value", "value"),
+    ("conversion", "conversion"),
+    ("outlet temperature", "outlet/temperature"),
+    ("highest temperature", "hottest/temperature"),
+    ("outlet pressure", "outlet/pressure"),
+    ("heat supplied", "heat/duty"),
+)
 STATE_COLUMNS = (
     ("temperature", "temperature"),
     ("conversion", "conversion"),
@@ -338,11 +352,11 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
     if not result["complete"]:
         verdict += " There may be others."
     numbers: Numbers = []
-    for page, one in zip(pages, result["solutions"], strict=True):
-        at = "" if len(pages) == 1 else f", at {told(one['value'])}"
-        if not at:
-            numbers.append((free, one["value"]))
-        numbers += [(f"{words}{at}", number) for words, number in page.numbers()]
+    tables: list[tuple[str, Table]] = []
+    if len(pages) == 1:
+        numbers = [(free, result["solutions"][0]["value"]), *first.numbers()]
+    else:
+        tables.append(("Where the target is met", _rows(result["solutions"], POINT_COLUMNS)))
     optimum = result.get("optimum")
     if optimum is not None:
         numbers.append((f"{free} of the largest conversion", optimum["value"]))
@@ -350,7 +364,6 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
     plots: list[Plot] = []
     if "curve" in result:
         plots.append(_points_plot(first.key, free, result))
-    tables: list[tuple[str, Table]] = []
     for page, one in zip(pages, result["solutions"], strict=True):
         if len(pages) == 1:
             plots += page.plots()
@@ -393,6 +406,11 @@ def _moves(values: Cells, zero: float) -> bool:
     return bool(there) and max(there) - min(there) > _STILL * max(map(abs, there))
 
 
+def _span(values: Cells) -> float:
+    there = [value for value in values if value is not None]
+    return max(there) - min(there) if there else 0.0
+
+
 def _interpolated(x: float, xs: Cells, ys: Cells) -> float | None:
     there = [(a, b) for a, b in zip(xs, ys, strict=True) if a is not None and b is not None]
     for (a, b), (c, d) in pairwise(there):
@@ -408,25 +426,28 @@ def _plot(
     columns: Mapping[str, str],
     what: str,
     x_label: str | None = None,
+    most: int = 1,
 ) -> Plot:
-    """Return a plot of columns of a table over one of them."""
+    """Return a plot of columns of a table over one of them; words tell those that change most."""
     x, x_unit = table.columns[where], table.units.get(where, "1")
     unit = table.units.get(next(iter(columns.values())), "1")
     label = x_label or where.replace("_", " ")
-    name, column = max(
-        columns.items(),
-        key=lambda each: max((v for v in table.columns[each[1]] if v is not None), default=0.0),
-    )
-    many = len(columns) > 1
-    said = f"the largest {what} is that of {name}, which" if many else f"the {what}"
-    says = course(said, table.columns[column], x, x_unit, unit, "on the way")
+    ranked = sorted(columns, key=lambda name: -_span(table.columns[columns[name]]))
+    told_of = [name for name in columns if name in ranked[:most]]
+    says = [
+        course(
+            f"the {what} of {name}" if len(columns) > 1 else f"the {what}",
+            *(table.columns[columns[name]], x, x_unit, unit, "on the way"),
+        )
+        for name in told_of
+    ]
     shown = (where, *columns.values())
     return Plot(
         title,
         label if x_unit == "1" else f"{label} [{x_unit}]",
         what if unit == "1" else f"{what} [{unit}]",
         tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
-        says,
+        " ".join(says),
         Table(
             {n: table.columns[n] for n in shown},
             {n: table.units[n] for n in shown if n in table.units},

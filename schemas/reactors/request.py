@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
-from typing import Any, TypeVar
+from typing import TypeVar
 
 from marshmallow import fields
 
@@ -85,9 +86,9 @@ class Asked:
 
 def read_reactor_request(
     schema: ReactorRequest,
-    document: Any,
-    build: Any,
-) -> tuple[Any, EdgeMap]:
+    document: object,
+    build: Callable[[Json, RequestReader, ReactionSet], T | None],
+) -> tuple[T, EdgeMap]:
     """Return what ``build`` makes of a reactor request, and its edge map.
 
     Raises
