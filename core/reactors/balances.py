@@ -24,7 +24,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Literal
+from typing import TypeAlias
 
 import numpy as np
 
@@ -40,11 +40,12 @@ from core.reactors.problem import (
     Isothermal,
     PackedBed,
     ReactorProblem,
+    SizeDimension,
 )
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import HeatsOfReaction
 
-Basis = Literal["volume", "catalyst_mass", "time"]
+Basis: TypeAlias = SizeDimension
 """What the independent variable is: m3 of reactor, kg of catalyst, or s."""
 
 

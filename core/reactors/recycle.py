@@ -14,7 +14,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
-from scipy.optimize import brentq, root
+from scipy.optimize import brentq, fsolve
 
 from core.arrays import FloatArray
 from core.errors import Amount, Fact, Note, Refused, refuse
@@ -303,9 +303,9 @@ def _settled(off: Callable[[FloatArray], FloatArray], start: FloatArray) -> Floa
     z = start
     for _ in range(3):
         z = z + 0.5 * off(z)
-    solved = root(off, z, method="hybr", options={"xtol": 1e-11, "maxfev": _MOST_TRIES * len(z)})
-    if np.abs(off(solved.x)).max() <= _MET:
-        return np.asarray(solved.x)
+    found, *_ = fsolve(off, z, xtol=1e-11, maxfev=_MOST_TRIES * len(z), full_output=True)
+    if np.abs(off(found)).max() <= _MET:
+        return np.asarray(found)
     for _ in range(_MOST_TRIES):
         step = off(z)
         if np.abs(step).max() <= _MET:

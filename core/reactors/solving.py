@@ -143,8 +143,7 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
         return None
     length = None
     if size is not None:
-        dimension = "catalyst_mass" if basis == "catalyst_mass" else "volume"
-        found = bed_length(reactor, dimension, size)
+        found = bed_length(reactor, basis, size)
         length = found if np.isfinite(found) else None
     mass_flow = float(problem.feed.flows @ problem.reactions.molar_masses)
     if basis == "catalyst_mass" and reactor.bulk_density is None:

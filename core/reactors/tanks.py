@@ -64,7 +64,9 @@ def through_tanks(
         As :func:`core.reactors.steady_states.steady_states`.
     """
     number = problem.reactor.number if isinstance(problem.reactor, TanksInSeries) else 1
-    feed, notes, stages = problem.feed, [], []
+    feed = problem.feed
+    notes: list[Note] = []
+    stages: list[StageReached] = []
     residence, at = 0.0, before
     key = problem.key
     told: SteadyStates | None = None
@@ -123,8 +125,7 @@ def _at_rest(
     *,
     curves: bool,
 ) -> _Tank:
-    dimension = "catalyst_mass" if basis == "catalyst_mass" else "volume"
-    found, notes = steady_states(problem, Size(dimension, size), curves=curves)
+    found, notes = steady_states(problem, Size(basis, size), curves=curves)
     states = tuple(_of_all_fed(problem, before, state) for state in found.states)
     described = found.described
     if near is not None:

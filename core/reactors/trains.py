@@ -7,8 +7,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from core.arrays import FloatArray
-from core.errors import Fact, Fault, Refused, refuse
-from core.reactors.balances import Balances, Basis
+from core.errors import Fact, Fault, Note, Refused, refuse
+from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
 from core.reactors.marching import Work
 from core.reactors.mixing import at_temperature, heated, mixed, sensible_duty
@@ -114,7 +114,7 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
     basis = basis_of(inside)
 
     def at(size: float) -> tuple[float, _At]:
-        sized = replace(stage, reactor=replace(stage.reactor, size=_sized(basis, size)))
+        sized = replace(stage, reactor=replace(stage.reactor, size=Size(basis, size)))
         end = _through(problem, (sized, *rest), before, points, work)
         return gap_at(problem, end.stream, end.fed, target), end
 
@@ -161,10 +161,6 @@ def _of_composition(target: Target) -> bool:
 def _train(problem: ReactorProblem) -> Train:
     assert isinstance(problem.reactor, Train)
     return problem.reactor
-
-
-def _sized(basis: Basis, size: float) -> Size:
-    return Size("catalyst_mass" if basis == "catalyst_mass" else "volume", size)
 
 
 def _start(problem: ReactorProblem) -> _At:
@@ -294,7 +290,7 @@ def _told(problem: ReactorProblem, end: _At) -> Reacted:
     times = [r.mean_residence_time for r in end.reacted]
     volumes = [r.volume for r in end.reacted]
     masses = [r.catalyst_mass for r in end.reacted]
-    notes = {}
+    notes: dict[tuple[object, ...], Note] = {}
     for each in end.reacted:
         for note in each.notes:
             notes.setdefault((note.code, note.detail, note.subject), note)
