@@ -96,7 +96,7 @@ def _searched(
         gap = course.observer.gap(target).on_floats()
         return gap(float(course.x[-1]), course.y[-1].tolist())[0], course
 
-    found = first_size(at, scale, ("target",))
+    found = first_size(at, scale)
     if found is None:
         raise _out_of_reach(at, scale)
     return found

@@ -178,6 +178,14 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
     )
 
 
+def outlet_of(course: Course) -> Stream:
+    """Return what leaves, without telling anything else of it."""
+    seen = course.observer.see(course.x[-1:], course.y[-1:])
+    check_temperatures(course.balances.problem, seen.temperature)
+    check_gas(course.balances.problem, seen)
+    return course.observer.stream(seen)
+
+
 def _extents(problem: ReactorProblem, course: Course, seen: Seen) -> tuple[FloatArray, bool]:
     """Return the extents at the end, and whether they are the only ones."""
     if seen.extents is not None:
