@@ -37,8 +37,10 @@ DIMENSIONS: dict[str, Exponents] = {
     "viscosity": (1, -1, -1, 0, 0),
     "heat_transfer_per_volume": (1, -1, -3, -1, 0),
     "heat_capacity_flow": (1, 2, -3, -1, 0),
+    "mass_per_molar_flow": (1, 0, 1, 0, -1),
 }
 """``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity;
 ``molar_heat_capacity`` an entropy too. The reaction rates are per volume and per mass of catalyst;
 what a reactor makes by its size is one of them. ``heat_transfer_per_volume`` is an overall
-coefficient times the area in a volume of reactor, ``heat_capacity_flow`` that of a utility."""
+coefficient times the area in a volume of reactor, ``heat_capacity_flow`` that of a utility,
+``mass_per_molar_flow`` catalyst over what of the key is fed to it."""

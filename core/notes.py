@@ -185,9 +185,25 @@ NOTES: dict[str, Entry] = {
         "The tank leaves the state it is sized for by itself; it would need control to stay there.",
     ),
     "several-steady-states": Entry(
-        "Several steady states",
-        "The tank can stand in more than one state at the same feed. Which one hangs on how it was"
-        " started; a disturbance can take it from one to another.",
+        "More than one steady state",
+        "A stirred tank can rest in any of its stable states, and a disturbance or another way of"
+        " starting can take it from one to another. Runaway is not assessed; follow local codes and"
+        " licensed practice.",
+    ),
+    "search-not-proven": Entry(
+        "Search that proves nothing",
+        "The steady states are those that a search found; there may be others.",
+    ),
+    "temperature-limit-exceeded": Entry(
+        "Temperature limit exceeded",
+        "Somewhere the reactor is hotter than the limit stated in 'temperature_limit'. Runaway,"
+        " decomposition and relief are not assessed; follow local codes and licensed practice.",
+    ),
+    "accumulated-reactant": Entry(
+        "Reactant accumulates in a fed batch",
+        "What is fed and has not reacted yet would heat the batch if cooling stopped, even with the"
+        " feed shut. A screening value: decomposition, gas and relief are not assessed; follow"
+        " local codes and licensed practice.",
     ),
     "steady-state-beyond-data": Entry(
         "A steady state beyond the data",

@@ -519,6 +519,22 @@ _REACTORS: dict[str, Entry] = {
         "One reaction only",
         "This release sizes reactors for one reaction. Send the one that decides the size.",
     ),
+    "size-not-stated": Entry(
+        "Size not stated",
+        "What comes out of a reactor, and where it must be run, hang on how big it is. State its"
+        " 'volume' or 'catalyst_mass', of a batch the 'time'; ask /v1/volume for the size that a"
+        " target needs.",
+    ),
+    "train-sizes": Entry(
+        "Sizes of a train",
+        "Where a size is asked for, exactly one reactor of a train is without one; else every one"
+        " has its own.",
+    ),
+    "cannot-be-free": Entry(
+        "Nothing to be changed",
+        "What is said to be free is not there in this reactor: a batch has no feed rate, a liquid"
+        " no pressure that counts, and only a reactor that exchanges heat has a utility.",
+    ),
     "feed-does-not-fit-reactor": Entry(
         "Feed does not fit the reactor",
         "A batch is charged with amounts, every other reactor is fed by flows. State the feed the"
@@ -599,8 +615,8 @@ _REACTORS: dict[str, Entry] = {
     ),
     "target-form": Entry(
         "Form of the target",
-        "A target is a conversion, or exactly one of flow, mole_fraction, concentration and yield"
-        " of a substance. State one.",
+        "A target is a conversion, an approach to equilibrium, or exactly one of flow,"
+        " mole_fraction, concentration, yield and maximum of a substance. State one.",
     ),
     "target-does-not-move": Entry(
         "Target does not change with conversion",

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping
 from typing import Any
 
 import numpy as np
@@ -35,9 +35,9 @@ from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
 from schemas.fields import Map, describe
 from schemas.gas_model import gas_words, write_gas
-from schemas.page import Curve, Page, Plot, told
+from schemas.page import Curve, Page, Plot, course, told
 from schemas.results import OpenSchema, TableSchema, envelope, number, numbers_by_name
-from schemas.table import Table
+from schemas.table import Table, cells
 from schemas.thermochemistry import write_sources
 from schemas.units import find_unit, spell
 
@@ -401,27 +401,27 @@ class _Writer:
                 values = self.problem.values
             elif name in self.problem.hold:
                 values = np.full(len(values), each[0])
-            columns[name] = _cells((values - scale.offset) / scale.factor)
+            columns[name] = cells((values - scale.offset) / scale.factor)
             units[name] = scale.unit
-        columns["conversion"] = _cells(self.reached.conversion[1:])
+        columns["conversion"] = cells(self.reached.conversion[1:])
         if self.reactions.rank == len(self.ids):
             for j, id_ in enumerate(self.ids):
-                columns[f"extent {id_}"] = _cells(states.extents[1:, j] / flow.factor)
+                columns[f"extent {id_}"] = cells(states.extents[1:, j] / flow.factor)
                 units[f"extent {id_}"] = flow.unit
         inside = self.feed.in_phase
         amounts = states.amounts[1:]
         total = amounts[:, inside].sum(axis=1)
         for i, name in enumerate(self.names):
             if inside[i] and not self.feed.solvent_unknown:
-                columns[f"mole fraction {name}"] = _cells(amounts[:, i] / total)
+                columns[f"mole fraction {name}"] = cells(amounts[:, i] / total)
             else:
-                columns[f"{self.words.flow} {name}"] = _cells(amounts[:, i] / flow.factor)
+                columns[f"{self.words.flow} {name}"] = cells(amounts[:, i] / flow.factor)
                 units[f"{self.words.flow} {name}"] = flow.unit
         if self.question.gas is not None:
-            columns["compressibility"] = _cells(states.compressibility[1:])
+            columns["compressibility"] = cells(states.compressibility[1:])
         if self.reached.heat is not None and self.problem.hold.startswith("temperature"):
             scale = edge.scales[self._heat_dimension]
-            columns["duty"] = _cells(self.reached.heat[1:] / scale.factor)
+            columns["duty"] = cells(self.reached.heat[1:] / scale.factor)
             units["duty"] = scale.unit
         return Table(columns, units)
 
@@ -440,7 +440,7 @@ class _Writer:
             "substance": list(self.names),
             f"inlet {word}": (self.feed.flows / flow.factor).tolist(),
             f"equilibrium {word}": (amounts / flow.factor).tolist(),
-            "mole fraction": _cells(fractions),
+            "mole fraction": cells(fractions),
         }
         return Table(columns, {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit})
 
@@ -485,7 +485,7 @@ class _Writer:
         columns: dict[str, list[Any]] = {"reaction": list(self.ids)}
         units: dict[str, str] = {}
         if self.reactions.rank == len(self.ids):
-            columns["extent"] = _cells(self.states.extents[0] / flow.factor)
+            columns["extent"] = cells(self.states.extents[0] / flow.factor)
             units["extent"] = flow.unit
         columns["ln K"] = [constants[id_]["natural_logarithm"]["value"] for id_ in self.ids]
         columns["K from"] = [constants[id_]["from"] for id_ in self.ids]
@@ -518,7 +518,7 @@ class _Writer:
                 x_label,
                 f"conversion of {key}",
                 (Curve(key, x, y),),
-                _course(f"the equilibrium conversion of {key}", y, x, table.units[over]),
+                course(f"the equilibrium conversion of {key}", y, x, table.units[over]),
                 table,
             )
         ]
@@ -553,7 +553,7 @@ class _Writer:
             x_label,
             shown_of if unit == "1" else f"{shown_of} [{unit}]",
             tuple(Curve(n, x, table.columns[c]) for n, c in columns.items()),
-            _course(
+            course(
                 f"the largest {what} is that of {name}, which",
                 table.columns[column],
                 x,
@@ -584,29 +584,3 @@ def _power(ln: float) -> float:
 
 def _finite(value: Any) -> float | None:
     return float(value) if np.isfinite(value) else None
-
-
-def _cells(values: FloatArray) -> list[float | None]:
-    return [value if math.isfinite(value) else None for value in values.tolist()]
-
-
-def _course(
-    what: str,
-    y: Sequence[float | None],
-    x: Sequence[float | None],
-    x_unit: str,
-    y_unit: str = "1",
-) -> str:
-    """Say how a curve runs, for who cannot see it."""
-    there = [(a, b) for a, b in zip(x, y, strict=True) if a is not None and b is not None]
-    begun = f"{what[0].upper()}{what[1:]}"
-    if not there:
-        return f"{begun} is not known anywhere on the sweep."
-    unit = "" if y_unit == "1" else f" {y_unit}"
-    (x0, y0), (x1, y1) = there[0], there[-1]
-    high = max(there, key=lambda point: point[1])
-    said = f"{begun} goes from {y0:.4g}{unit} at {x0:.5g} {x_unit} to"
-    said += f" {y1:.4g}{unit} at {x1:.5g} {x_unit}"
-    if high[1] > 1.001 * max(y0, y1) + 1e-12:
-        said += f", with {high[1]:.4g}{unit} at {high[0]:.5g} {x_unit} as the most"
-    return f"{said}."

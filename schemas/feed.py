@@ -57,15 +57,18 @@ def read_feed(
     reactions: ReactionSet,
     key: int,
     models: GasReader | None = None,
+    subject: Subject = ("feed",),
+    *,
+    flows_only: bool = False,
 ) -> KnownFeed | None:
     """Return the feed as one stream of known flows; None after a fault.
 
     A feed given by an analysis is the account that fits its readings best. What
-    Z is not stated is found by the gas model that ``models`` reads.
+    Z is not stated is found by the gas model that ``models`` reads. With
+    ``flows_only`` the amounts of a batch are refused.
     """
-    subject: Subject = ("feed",)
     reader.at(subject, pointer)
-    batch = is_batch(document)
+    batch = is_batch(document) and not flows_only
     kept = len(reader.faults)
     analysed = any("analysis" in stream for stream in document.get("streams", (document,)))
     real = models is not None and models.real

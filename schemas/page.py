@@ -112,3 +112,27 @@ def cell(value: Any) -> str:
     if isinstance(value, int | float) and isfinite(value):
         return f"{value:.{DIGITS}g}"
     return str(value)
+
+
+def course(
+    what: str,
+    y: Sequence[float | None],
+    x: Sequence[float | None],
+    x_unit: str,
+    y_unit: str = "1",
+    where: str = "on the sweep",
+    at: str = "at",
+) -> str:
+    """Say how a curve runs, for who cannot see it; ``at`` stands before a place on it."""
+    there = [(a, b) for a, b in zip(x, y, strict=True) if a is not None and b is not None]
+    begun = f"{what[0].upper()}{what[1:]}"
+    if not there:
+        return f"{begun} is not known anywhere {where}."
+    unit, of_x = ("" if name == "1" else f" {name}" for name in (y_unit, x_unit))
+    (x0, y0), (x1, y1) = there[0], there[-1]
+    high = max(there, key=lambda point: point[1])
+    said = f"{begun} goes from {y0:.4g}{unit} {at} {x0:.5g}{of_x} to"
+    said += f" {y1:.4g}{unit} {at} {x1:.5g}{of_x}"
+    if high[1] > 1.001 * max(y0, y1) + 1e-12:
+        said += f", with {high[1]:.4g}{unit} {at} {high[0]:.5g}{of_x} as the most"
+    return f"{said}."

@@ -220,6 +220,7 @@ def read_request(
     document: object,
     streams: Sequence[str],
     build: Callable[[Json, RequestReader, ReactionSet], T | None],
+    further: Callable[[Json], Iterable[tuple[Json, str]]] = lambda _: (),
 ) -> tuple[T, EdgeMap]:
     """Return what a request asks for, and its edge map.
 
@@ -234,6 +235,8 @@ def read_request(
     build : callable
         Makes the question from the request, its reader and its reactions; None
         after a fault that it kept.
+    further : callable
+        Yields the streams that stand deeper in the request, and where.
 
     Raises
     ------
@@ -243,7 +246,7 @@ def read_request(
     request = load(schema, document)
     reader = RequestReader.of(request)
     stated = [(request[name], f"/{name}") for name in streams if name in request]
-    reactions = read_reactions(request, reader, stated)
+    reactions = read_reactions(request, reader, (*stated, *further(request)))
     question = build(request, reader, reactions)
     edge = reader.finish(request.get("report_in"))
     assert question is not None

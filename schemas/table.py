@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from core.arrays import FloatArray
 from schemas.edge import Json
 
 
@@ -19,3 +21,8 @@ class Table:
     def document(self) -> Json:
         """Return the table as it stands in JSON."""
         return {"columns": dict(self.columns), "units": dict(self.units)}
+
+
+def cells(values: FloatArray) -> list[float | None]:
+    """Return a column of numbers; None where there is none."""
+    return [value if math.isfinite(value) else None for value in values.tolist()]

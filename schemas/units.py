@@ -52,6 +52,7 @@ DEFAULT_UNITS: dict[str, str] = {
     "viscosity": "mPa s",
     "heat_transfer_per_volume": "kW/(m3 K)",
     "heat_capacity_flow": "kW/K",
+    "mass_per_molar_flow": "kg h/kmol",
 }
 """The unit of each dimension where neither the request nor its fields name one."""
 

@@ -6,11 +6,10 @@ from typing import Any
 
 from flask import Blueprint
 
-from core.reactors.energetics import energetics_of
-from core.reactors.sizing import size_reactor
-from schemas import volume as wire
+from core.reactors.volume import volume
 from schemas.answer import Answer
 from schemas.contract import operation
+from schemas.reactors import volume as wire
 from service.endpoint import calculation
 
 blueprint = Blueprint("volume", __name__)
@@ -20,7 +19,7 @@ blueprint = Blueprint("volume", __name__)
 def answer(document: Any) -> Answer:
     """Return the reactor size that the target needs."""
     question, edge = wire.read(document)
+    asked = question.asked
     with edge.locating():
-        sizing = size_reactor(question.problem, wire.PROFILE_POINTS)
-        energetics = energetics_of(question.problem, sizing, question.heats, question.constant)
-    return wire.write(question, sizing, energetics, edge)
+        reacted = volume(asked.problem, question.target, asked.points)
+    return wire.write(question, reacted, edge)

@@ -343,9 +343,11 @@ class StraightLine:
         """The outputs that do not hang on the inputs; None elsewhere."""
         return tuple(self.tape.value_of(at) for at in self.outputs)
 
-    def on_floats(self) -> Callable[[float, FloatArray], list[float]]:
-        """Return f(x, y): the first input a float, the others an array of shape (inputs - 1,)."""
-        found: Callable[[float, FloatArray], list[float]] = self._bound("floats", _FLOATS, None)
+    def on_floats(self) -> Callable[[float, Sequence[float]], list[float]]:
+        """Return f(x, y): the first input a float, the others a list of floats."""
+        found: Callable[[float, Sequence[float]], list[float]] = self._bound(
+            "floats", _FLOATS, None
+        )
         return found
 
     def on_arrays(self, case: np.ndarray | None = None) -> Callable[..., list[Any]]:
@@ -400,7 +402,7 @@ class StraightLine:
         floats = style == "floats"
         lines = [f"def bind({', '.join(f'v{at}' for at in numbers)}):", "  def f(x, y):"]
         if self.inputs > 1:
-            lines.append(f"    [{unpacked}] = y" + (".tolist()" if floats else ""))
+            lines.append(f"    [{unpacked}] = y")
         if 0 in used:
             lines.append(f"    v{self.tape.enter('input', 0)} = x")
         forms = _FLOAT_FORMS if floats else _FORMS

@@ -478,11 +478,7 @@ def _factors(
 ) -> tuple[tuple[int, ...], FloatArray, tuple[Note, ...]]:
     """Products, their factors s_P, and a note where there is none."""
     per_key = dict(stated)
-    made_by: dict[int, list[int]] = {}
-    for j in range(len(reactions.reactions)):
-        for i in makes(reactions, key, j):
-            made_by.setdefault(i, []).append(j)
-    products = sorted(made_by)
+    products = products_of(reactions, key)
     names = reactions.names
     notes: list[Note] = []
     factors: list[float] = []
@@ -506,9 +502,8 @@ def _factors(
         if i in per_key:
             factors.append(float(per_key[i]))
             continue
-        shares = {_per_product(reactions, j, key, i) for j in made_by[i]}
-        share = shares.pop()
-        if shares or share is None:
+        share = key_per_product(reactions, key, i)
+        if share is None:
             factors.append(np.nan)
             notes.append(
                 _no_factor(
@@ -518,8 +513,19 @@ def _factors(
                 )
             )
         else:
-            factors.append(float(share))
-    return tuple(products), np.array(factors), tuple(notes)
+            factors.append(share)
+    return products, np.array(factors), tuple(notes)
+
+
+def key_per_product(reactions: ReactionSet, key: int, product: int) -> float | None:
+    """Moles of key that a mole of a product takes: s_P of a yield on key basis.
+
+    None where the reactions that make it do not all consume the key at one ratio.
+    """
+    of = [j for j in range(len(reactions.reactions)) if product in makes(reactions, key, j)]
+    shares = {_per_product(reactions, j, key, product) for j in of}
+    share = shares.pop() if len(shares) == 1 else None
+    return None if share is None else float(share)
 
 
 def _per_product(reactions: ReactionSet, j: int, key: int, product: int) -> Fraction | None:

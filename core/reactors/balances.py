@@ -24,7 +24,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Literal
+from typing import TypeAlias
 
 import numpy as np
 
@@ -40,11 +40,12 @@ from core.reactors.problem import (
     Isothermal,
     PackedBed,
     ReactorProblem,
+    SizeDimension,
 )
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import HeatsOfReaction
 
-Basis = Literal["volume", "catalyst_mass", "time"]
+Basis: TypeAlias = SizeDimension
 """What the independent variable is: m3 of reactor, kg of catalyst, or s."""
 
 
@@ -96,12 +97,16 @@ class Balances:
         What enters, or is charged.
     friction : Friction or None
         Of the bed.
+    feeding : bool or None
+        Whether a batch that is fed is being fed, or has been; None: as its time says,
+        which is seen and not marched across.
     """
 
     problem: ReactorProblem
     basis: Basis
     feed: Stream
     friction: Friction | None = None
+    feeding: bool | None = None
 
     @cached_property
     def heats(self) -> HeatsOfReaction | None:
@@ -170,8 +175,8 @@ class Balances:
 
     @cached_property
     def slopes(self) -> StraightLine:
-        """D state/dx of (x, state)."""
-        return self.recorded(self._slopes)
+        """Of (x, state): d state/dx."""
+        return self.recorded(self.slopes_of)
 
     @cached_property
     def rates(self) -> StraightLine:
@@ -182,11 +187,12 @@ class Balances:
         """Return what follows from a state, as straight-line code of (x, state)."""
         return record(lambda x, *y: calculation(State(self, y, x)), 1 + self.layout.size)
 
-    def _slopes(self, state: State) -> list[Number]:
+    def slopes_of(self, state: State) -> list[Number]:
+        """Return d state/dx at a state."""
         rates = state.rates()
         per: Number = state.volume if self.feed.batch else 1.0
         nu = self.problem.reactions.nu
-        fed = self.fed
+        fed = None if self.feeding is False else self.fed
         slopes = []
         for i in range(len(state.flows)):
             made: Number = 0.0
@@ -231,6 +237,18 @@ class Balances:
         """What flows into a batch while it reacts."""
         reactor = self.problem.reactor
         return reactor.fed.stream if isinstance(reactor, Batch) and reactor.fed else None
+
+    @property
+    def until(self) -> float:
+        """When that ends, s."""
+        reactor = self.problem.reactor
+        return reactor.fed.until if isinstance(reactor, Batch) and reactor.fed else np.inf
+
+    def fed_for(self, x: Number) -> Number:
+        """Return for how long a batch has been fed at a time, s."""
+        if self.feeding is None and np.isfinite(self.until):
+            return np.minimum(x, self.until)
+        return self.until if self.feeding is False else x
 
     def _heating(
         self, state: State, rates: Sequence[Number], per: Number, fed: Stream | None
@@ -372,7 +390,7 @@ class State:
                 return float(v)
             added = fed.volumetric_flow
             assert added is not None
-            return float(v) + float(added) * self.x
+            return float(v) + float(added) * self.balances.fed_for(self.x)
         rt = self.temperature * GAS_CONSTANT
         return self.in_phase * rt * self.compressibility / self.pressure
 

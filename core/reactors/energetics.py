@@ -1,17 +1,16 @@
-"""Heat and equilibrium of a reactor that has been sized: what its temperature hangs on.
+"""Heat and equilibrium of a reactor at work: what its temperature hangs on.
 
-The duty is what keeps the reactor at its temperature: of a flow, and of a batch
-at constant pressure, the extent times the enthalpy of reaction; of a gas in a
-closed vessel that holds its volume times the change of internal energy, which
-is less by Z R T for each mole of gas made. Shaft work and the heat of mixing are
-left out. The adiabatic rises are what the same extent, and that of complete
-conversion, would bring if no heat passed.
+The duty is what is supplied to the reactor: of a flow, and of a batch at constant
+pressure, the change of enthalpy from inlet to outlet; of a gas in a closed vessel
+that holds its volume the change of internal energy, which is less by Z R T for each
+mole of gas. Shaft work and the heat of mixing are left out. The adiabatic rises are
+what the same extents, and those that give off most, would bring if no heat passed.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass, field
-from typing import Any
+from functools import cached_property
 
 import numpy as np
 
@@ -33,9 +32,17 @@ from core.rates.equilibrium_constant import (
     coefficient_sum,
 )
 from core.rates.rate_law import ReverseConstant
-from core.reactors.sizing import Sizing, SizingProblem
+from core.reactions.reaction_set import ReactionSet
+from core.reactors.problem import Adiabatic, Batch, Isothermal, ReactorProblem
+from core.reactors.reacted import (
+    AdiabaticEquilibrium,
+    ConversionLimit,
+    EquilibriumBesides,
+    ReactorHeat,
+)
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.metered import Measurement
+from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import adiabatic_temperature
 from core.thermochemistry.known_heats import KnownHeats, not_known
@@ -53,87 +60,75 @@ _FEED: Subject = ("feed",)
 
 
 @dataclass(frozen=True, eq=False)
-class Energetics:
-    """Heat and equilibrium of one sized reactor; None where it is not known or does not apply.
+class Outcome:
+    """What came out of a reactor.
 
     Attributes
     ----------
-    enthalpy : float or None
-        Of the reaction as written at the reactor's temperature, J per mole of extent.
-    duty : float or None
-        To be supplied, W (batch: J).
-    adiabatic_rise, adiabatic_rise_complete : float or None
-        K.
-    equilibrium_conversion : float or None
-        Of the key, at the reactor's temperature.
-    adiabatic_conversion, adiabatic_temperature : float or None
-        Where the feed comes to equilibrium without exchange of heat; -, K.
-    approach : ReactionApproach or None
+    outlet : Stream
+    extents : ndarray, shape (R,)
+        mol/s (batch: mol); of dependent reactions any that make this outlet of the feed.
+    limit : ConversionLimit or None
+        Of its own way.
+    entered : Stream or None
+        What entered besides the feed, and the feed with it; None: the feed.
+    """
+
+    outlet: Stream
+    extents: FloatArray
+    limit: ConversionLimit | None = None
+    entered: Stream | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Energetics:
+    """Heat and equilibrium; None where it is not known or does not apply.
+
+    Attributes
+    ----------
+    heat : ReactorHeat or None
+    equilibrium : EquilibriumBesides or None
     properties : tuple of StandardProperties
         That were used.
     notes, assumed : tuple of Note
     """
 
-    enthalpy: float | None = None
-    duty: float | None = None
-    adiabatic_rise: float | None = None
-    adiabatic_rise_complete: float | None = None
-    equilibrium_conversion: float | None = None
-    adiabatic_conversion: float | None = None
-    adiabatic_temperature: float | None = None
-    approach: ReactionApproach | None = None
+    heat: ReactorHeat | None = None
+    equilibrium: EquilibriumBesides | None = None
     properties: tuple[StandardProperties, ...] = ()
     notes: tuple[Note, ...] = ()
     assumed: tuple[Note, ...] = ()
 
 
-def energetics_of(
-    problem: SizingProblem,
-    sizing: Sizing,
-    heats: KnownHeats | None,
-    constant: EquilibriumConstant | None,
-) -> Energetics:
-    """Return heat and equilibrium of a reactor, of one case.
+def energetics_of(problem: ReactorProblem, outcome: Outcome) -> Energetics:
+    """Return heat and equilibrium of a reactor at work.
 
     What is not known is None and told in a note; nothing is refused.
-
-    Parameters
-    ----------
-    problem : SizingProblem
-    sizing : Sizing
-        Its answer.
-    heats : KnownHeats or None
-        None where the feed's temperature is not stated.
-    constant : EquilibriumConstant or None
-        Of the reaction, where one is stated.
     """
-    found = _Finder(problem, sizing, heats, constant)
-    found.heat()
-    if constant is not None:
-        found.equilibrium(constant)
+    found = _Finder(problem, outcome)
+    heat = found.heat()
+    equilibrium = found.equilibrium(heat)
     notes = (*found.notes, *fuel_with_oxidant(problem.reactions, problem.feed.flows, _FEED))
-    return Energetics(
-        **found.told, properties=found.properties, notes=notes, assumed=tuple(found.assumed)
-    )
+    return Energetics(heat, equilibrium, found.properties, notes, tuple(found.assumed))
 
 
 @dataclass
 class _Finder:
-    problem: SizingProblem
-    sizing: Sizing
-    heats: KnownHeats | None
-    constant: EquilibriumConstant | None
-    told: dict[str, Any] = field(default_factory=dict)
+    problem: ReactorProblem
+    outcome: Outcome
     properties: tuple[StandardProperties, ...] = ()
     notes: list[Note] = field(default_factory=list)
     assumed: list[Note] = field(default_factory=list)
 
     def __post_init__(self) -> None:
         problem = self.problem
-        self.feed, self.nu = problem.feed, problem.reactions.nu[0]
+        self.feed, self.nu = problem.feed, problem.reactions.nu
         t = self.feed.temperature
         self.temperature = None if t is None else float(t)
-        hold = getattr(problem.reactor, "hold", "pressure")
+        out = self.outcome.outlet.temperature
+        self.leaving = None if out is None else float(out)
+        reactor = problem.reactor
+        hold = reactor.hold if isinstance(reactor, Batch) else "pressure"
         self.gas_held = self.feed.phase == "gas" and self.feed.batch and hold == "volume"
 
     @property
@@ -143,8 +138,8 @@ class _Finder:
             return None
         return np.where(self.feed.in_phase, self.feed.compressibility, 0.0)
 
-    def heat(self) -> None:
-        t, known = self.temperature, self.heats
+    def heat(self) -> ReactorHeat | None:
+        t, known = self.temperature, self.problem.heats
         if t is None or known is None:
             self.notes.append(
                 Note(
@@ -154,38 +149,62 @@ class _Finder:
                     subject=_FEED,
                 )
             )
-            return
+            return None
         try:
             each = known.enthalpies(t, ("feed", "temperature"))
         except Refused as refused:
             self.notes.append(not_known(refused.faults, "heat"))
-            return
+            return None
         if each is None:
             self.notes.append(not_known((*known.faults, *known.stream_faults), "heat"))
-            return
+            return None
         # A heat stated at this temperature needs no properties, and there may be none.
         self.properties = tuple(p for p in known.properties if p is not None)
         reacting = () if known.of_reacting is None else known.of_reacting[0]
         self.notes += extrapolations(reacting, np.array(t), ("feed", "temperature"))
-        self._spread(known, float(each[0]))
+        self._spread(known, each)
         if self.feed.phase == "liquid":
             self.assumed.append(_MIXING_LEFT_OUT)
-        per_extent = enthalpy = float(each[0])
-        if self.held is not None:
-            per_extent -= GAS_CONSTANT * t * float(self.nu @ self.held)
-        key = self.problem.key
-        extent = float(self.sizing.conversion * self.feed.flows[key] / -self.nu[key])
-        self.told |= {"enthalpy": enthalpy, "duty": per_extent * extent + 0.0}
-        self._rises(t, known, extent)
+        reached, complete = self._rises(t, known)
+        return ReactorHeat(each, t, self._duty(t, known, each), reached, complete)
 
-    def _spread(self, known: KnownHeats, enthalpy: float) -> None:
-        """Say where well-known collections differ on the heat, as independent errors."""
-        if 0 in known.stated or known.of_reacting is None:
+    def _duty(self, t: float, known: KnownHeats, each: FloatArray) -> float | None:
+        """Return what is supplied, W (batch: J)."""
+        if isinstance(self.problem.thermal, Adiabatic):
+            return 0.0
+        extents, out = self.outcome.extents, self.outcome.outlet
+        duty = float(extents @ each)
+        entered = self.outcome.entered or self.feed
+        warmer = self.leaving != t or entered is not self.feed
+        if self.held is not None:
+            duty -= GAS_CONSTANT * t * float(extents @ (self.nu @ self.held))
+        if not warmer:
+            return duty + 0.0
+        if known.of_all is None or self.feed.solvent_unknown or self.leaving is None:
+            self.notes.append(self._lacking(known) or _NO_DUTY)
+            return None
+        # Reacted where it enters, then warmed to where it leaves.
+        capacities = known.of_all[1].heat_capacities
+        for flow, came, cp in zip(out.flows, entered.flows, capacities, strict=True):
+            entering = entered.temperature if entered is not self.feed else t
+            assert entering is not None
+            duty += float(flow) * float(cp.enthalpy(self.leaving))
+            duty -= float(flow - came) * float(cp.enthalpy(t))
+            duty -= float(came) * float(cp.enthalpy(float(entering)))
+        if self.held is not None:
+            duty -= GAS_CONSTANT * float(out.flows @ self.held) * (self.leaving - t)
+        return duty + 0.0
+
+    def _spread(self, known: KnownHeats, each: FloatArray) -> None:
+        """Say where well-known collections differ on a heat, as independent errors."""
+        if known.of_reacting is None:
             return
         properties, heats = known.of_reacting
-        each = np.array([p.spreads.get("enthalpy", 0.0) for p in properties])
-        spread = float(np.sqrt(((heats.nu[0] * each) ** 2).sum()))
-        if spread > _SPREAD * abs(enthalpy):
+        spreads = np.array([p.spreads.get("enthalpy", 0.0) for p in properties])
+        found = np.sqrt(((heats.nu * spreads) ** 2).sum(axis=1))
+        for j, (spread, enthalpy) in enumerate(zip(found.tolist(), each.tolist(), strict=True)):
+            if j in known.stated or spread <= _SPREAD * abs(enthalpy):
+                continue
             self.notes.append(
                 Note(
                     "sources-disagree",
@@ -202,21 +221,21 @@ class _Finder:
                 )
             )
 
-    def _rises(self, t: float, known: KnownHeats, extent: float) -> None:
+    def _rises(self, t: float, known: KnownHeats) -> tuple[float | None, float | None]:
         lacking = self._lacking(known)
         if lacking is not None:
             self.notes.append(lacking)
-            return
-        reached, fault = self._rise(t, known, extent)
-        flows = self.feed.flows
-        forward, _, backward, _ = extent_limits(self.nu, flows)
-        complete, beyond = self._rise(t, known, forward if extent >= 0 else backward)
-        self.told |= {"adiabatic_rise": reached, "adiabatic_rise_complete": complete}
+            return None, None
+        entered = self.outcome.entered or self.feed
+        reached, fault = self._rise(t, known, self.outcome.extents, entered)
+        complete, beyond = self._rise(t, known, self._complete(t, known, entered.flows), entered)
         first = fault or beyond
         if first is not None:
             which = "adiabatic rise" if fault else "adiabatic rise of complete conversion"
             self.notes.append(not_known([first], which))
         ends = [t, *(t + rise for rise in (reached, complete) if rise is not None)]
+        if self.leaving is not None:
+            ends.append(self.leaving)
         told = {note.facts.get("substance") for note in self.notes}
         assert known.of_all is not None
         self.notes += [
@@ -233,6 +252,15 @@ class _Finder:
             self.notes.append(_caution(complete, "by"))
         elif least is not None:
             self.notes.append(_caution(least, "by more than"))
+        return reached, complete
+
+    def _complete(self, t: float, known: KnownHeats, flows: FloatArray) -> FloatArray:
+        """Return the extents that use up what limits the reaction; of several that heat most."""
+        if len(self.nu) > 1:
+            assert known.of_all is not None
+            return hottest_extents(self.problem.reactions, flows, known.of_all[1].enthalpy(t))
+        forward, _, backward, _ = extent_limits(self.nu[0], flows)
+        return np.array([forward if self.outcome.extents[0] >= 0 else backward])
 
     def _lacking(self, known: KnownHeats) -> Note | None:
         """Say why temperatures of the stream are not known."""
@@ -250,66 +278,97 @@ class _Finder:
         return None
 
     def _rise(
-        self, t: float, known: KnownHeats, extent: float
+        self, t: float, known: KnownHeats, extents: FloatArray, entered: Stream
     ) -> tuple[float | None, Fault | None]:
         assert known.of_all is not None
         properties, heats = known.of_all
-        extents = np.array([extent])
+        start = t if entered is self.feed or entered.temperature is None else entered.temperature
         try:
             end = adiabatic_temperature(
-                self.feed.flows, extents, t, heats, properties, _FEED, self.held
+                entered.flows, extents, float(start), heats, properties, _FEED, self.held
             )
         except Refused as refused:
             return None, refused.faults[0]
-        return float(end) - t, None
+        return float(end) - float(start), None
 
-    def equilibrium(self, constant: EquilibriumConstant) -> None:
-        problem, limit = self.problem, self.sizing.limit
-        heat, t = self.told.get("enthalpy"), self.temperature
-        if heat is not None and t is not None:
-            gas = self.feed.phase == "gas"
-            order = coefficient_sum(self.nu, self.feed.in_phase) if gas else 0.0
-            self.notes += constant.remarks_on_heat(
-                heat, t, order, constant_subject(problem.reactions, 0)
-            )
-        by_rate = float(limit.conversion) if limit.at_equilibrium else None
-        reverse = isinstance(problem.rate.reverse, ReverseConstant)
-        if by_rate is not None and not reverse:
-            self.told["equilibrium_conversion"] = by_rate
-        elif self.temperature is not None:
-            hold: Hold = "temperature-volume" if self.gas_held else "temperature-pressure"
-            found = self._reached(constant, hold)
-            if found is not None:
-                self.told["equilibrium_conversion"] = found[0]
-                if by_rate is not None and abs(by_rate - found[0]) > _DISAGREE:
-                    self.notes.append(self._disagreement(by_rate, found[0]))
-        if self.temperature is None or not constant.constant.needs_temperature:
-            return
-        if not self._activities_known(constant):
+    def equilibrium(self, heat: ReactorHeat | None) -> EquilibriumBesides | None:
+        """Return equilibrium of the feed and approach of the outlet."""
+        problem, limit = self.problem, self.outcome.limit
+        constants = problem.constants or (None,) * len(self.nu)
+        stated = {j: c for j, c in enumerate(constants) if c is not None}
+        by_rate = None
+        if limit is not None and limit.bounded_by == "equilibrium":
+            by_rate = limit.conversion
+        if not stated:
+            one = len(self.nu) == 1 and problem.laws[0].reverse is not None
+            return EquilibriumBesides(by_rate) if one and by_rate is not None else None
+        if heat is not None and self.temperature is not None:
+            for j, constant in stated.items():
+                order = 0.0
+                if self.feed.phase == "gas":
+                    order = coefficient_sum(self.nu[j], self.feed.in_phase)
+                subject = constant_subject(problem.reactions, j)
+                enthalpy = float(heat.enthalpies[j])
+                self.notes += constant.remarks_on_heat(enthalpy, self.temperature, order, subject)
+        over = any(c.constant.needs_temperature for c in stated.values())
+        conversion = self._conversion(stated, by_rate)
+        if self.temperature is None or self.leaving is None or not over:
+            return EquilibriumBesides(conversion, over)
+        if not all(self._activities_known(j, c) for j, c in stated.items()):
             self.notes.append(_NEEDS_IDEAL)
-            return
-        self._approach(constant)
-        known = self.heats
-        if known is None or known.of_all is None or self.feed.solvent_unknown:
-            return
-        found = self._reached(constant, "energy-volume" if self.gas_held else "enthalpy-pressure")
-        if found is not None:
-            self.told |= {"adiabatic_conversion": found[0], "adiabatic_temperature": found[1]}
+            return EquilibriumBesides(conversion, over)
+        found = {j: self._approach(j, c) for j, c in stated.items()}
+        adiabatic = None
+        known = problem.heats
+        if len(stated) == len(self.nu) and known is not None and known.of_all is not None:
+            hold: Hold = "energy-volume" if self.gas_held else "enthalpy-pressure"
+            both = None if self.feed.solvent_unknown else self._reached(stated, hold)
+            if both is not None:
+                adiabatic = AdiabaticEquilibrium(*both)
+        return EquilibriumBesides(conversion, over, adiabatic, found)
 
-    def _activities_known(self, constant: EquilibriumConstant) -> bool:
-        total = coefficient_sum(self.nu, self.feed.in_phase)
-        return not (constant.kind == "concentration" and total and self.feed.compressibility != 1)
+    def _conversion(
+        self, stated: dict[int, EquilibriumConstant], by_rate: float | None
+    ) -> float | None:
+        """Return the equilibrium conversion of the key, at the outlet's temperature."""
+        laws, thermal = self.problem.laws, self.problem.thermal
+        own = isinstance(thermal, Isothermal) and self.leaving == self.temperature
+        reverse = any(isinstance(law.reverse, ReverseConstant) for law in laws)
+        if by_rate is not None and own and not reverse:
+            return by_rate
+        if len(stated) < len(self.nu) or self.temperature is None or self.leaving is None:
+            return None
+        found = self._reached(
+            stated, "temperature-volume" if self.gas_held else "temperature-pressure"
+        )
+        if found is None:
+            return None
+        if by_rate is not None and own and abs(by_rate - found[0]) > _DISAGREE:
+            self.notes.append(self._disagreement(by_rate, found[0]))
+        return found[0]
 
-    def _reached(self, constant: EquilibriumConstant, hold: Hold) -> tuple[float, float] | None:
+    def _activities_known(self, j: int, constant: EquilibriumConstant) -> bool:
+        total = coefficient_sum(self.nu[j], self.feed.in_phase)
+        ideal = self.feed.compressibility == 1 and self.problem.gas is None
+        return not (constant.kind == "concentration" and total and not ideal)
+
+    def _reached(
+        self, stated: dict[int, EquilibriumConstant], hold: Hold
+    ) -> tuple[float, float] | None:
         """Conversion and temperature of equilibrium from this feed; None after a note."""
-        problem, known = self.problem, self.heats
+        problem, known = self.problem, self.problem.heats
         both = None if known is None else known.of_all
+        moved = hold == "temperature-pressure"
+        gas = problem.gas
         asked = FeedAtEquilibrium(
             reactions=problem.reactions,
             key=problem.key,
-            feed=self.feed,
-            constants=(constant,),
+            feed=self.outcome.entered or self.feed,
+            constants=tuple(stated.values()),
             hold=hold,
+            temperature=self.leaving if hold.startswith("temperature") else None,
+            pressure=self.outcome.outlet.pressure if moved else None,
+            equation=None if gas is None else gas.equation,
             properties=None if both is None or hold.startswith("temperature") else both[0],
             heats=None if both is None else both[1],
         )
@@ -329,16 +388,18 @@ class _Finder:
             )
             return None
         t = float(reached.states.temperature[0])
-        self._tell(constant.notes(t, subject))
+        for constant in stated.values():
+            self._tell(constant.notes(t, subject))
         return float(reached.conversion[0]), t
 
-    def _approach(self, constant: EquilibriumConstant) -> None:
-        problem, out = self.problem, self.sizing.outlet
-        t, subject = self.temperature, constant_subject(problem.reactions, 0)
+    def _approach(self, j: int, constant: EquilibriumConstant) -> ReactionApproach | None:
+        """Return the approach of the outlet; None after a note."""
+        problem, out = self.problem, self.outcome.outlet
+        t, subject = self.leaving, constant_subject(problem.reactions, j)
         assert t is not None
         volume, pressure = out.volumetric_flow, out.pressure
         stated = StatedConstants(
-            problem.reactions,
+            self._alone(j),
             (constant,),
             out.in_phase,
             out.phase,
@@ -355,21 +416,42 @@ class _Finder:
             else Measurement(float(pressure), 0.0, ("feed", "pressure")),
             volume=float(volume) if volume is not None and out.phase == "liquid" else None,
         )
+        gas = problem.gas
         try:
-            found, notes = approaches(stated, outlet, None)
+            found, notes = approaches(stated, outlet, None if gas is None else gas.equation)
         except Refused as refused:
             first = refused.faults[0]
             why = f"no approach is given: {first.detail}"
             self._tell((Note("approach-not-known", why, "warning", subject, first.facts),))
-            return
-        self.told["approach"] = found[0]
+            return None
         self._tell(notes)
+        return found[0]
+
+    def _alone(self, j: int) -> ReactionSet:
+        """Return one reaction among all the substances."""
+        reactions = self.problem.reactions
+        return ReactionSet(
+            reactions.substances,
+            (reactions.reactions[j],),
+            reactions.nu[j : j + 1],
+            1,
+            reactions.molar_masses,
+        )
+
+    @cached_property
+    def _of_constants(self) -> set[str]:
+        """Codes of the notes on the constants at the feed, which the answer tells anyway."""
+        problem, t = self.problem, self.temperature
+        return {
+            note.code
+            for j, constant in enumerate(problem.constants)
+            if constant is not None
+            for note in constant.notes(t, constant_subject(problem.reactions, j))
+        }
 
     def _tell(self, notes: tuple[Note, ...]) -> None:
-        """Keep notes of the constant at another temperature, each once."""
-        t, subject = self.temperature, constant_subject(self.problem.reactions, 0)
-        assert self.constant is not None
-        there = {note.code for note in (*self.constant.notes(t, subject), *self.notes)}
+        """Keep notes of the constants at another temperature, each once."""
+        there = {*self._of_constants, *(note.code for note in self.notes)}
         self.notes += [note for note in notes if note.code not in there]
 
     def _disagreement(self, by_rate: float, by_constant: float) -> Note:
@@ -384,6 +466,42 @@ class _Finder:
         )
 
 
+def hottest_extents(
+    reactions: ReactionSet, flows: FloatArray, enthalpies: FloatArray
+) -> FloatArray:
+    """Return the extents that give off most heat, of all that the feed allows.
+
+    Parameters
+    ----------
+    reactions : ReactionSet
+    flows : ndarray, shape (S,)
+        mol/s.
+    enthalpies : ndarray, shape (R,)
+        J per mole of extent.
+
+    Returns
+    -------
+    ndarray, shape (R,)
+        mol/s; those of irreversible reactions not below zero. All zero where there is
+        no end to them.
+    """
+    from scipy.optimize import linprog  # a quarter of a second to load; several reactions alone
+
+    scale = float(flows.max())
+    solved = linprog(
+        enthalpies / float(np.abs(enthalpies).max() or 1.0),
+        A_ub=-reactions.nu.T,
+        b_ub=flows / scale,
+        bounds=[(None if r.reversible else 0.0, None) for r in reactions.reactions],
+        method="highs",
+    )
+    if not solved.success or solved.x is None:
+        return np.zeros(len(enthalpies))
+    extents: FloatArray = np.asarray(solved.x) * scale
+    # The corner's own rounding may leave a trace of less than nothing.
+    return extents * (1.0 - 1e-12)
+
+
 _HOLDS: dict[Hold, str] = {
     "temperature-pressure": "isothermal",
     "temperature-volume": "isothermal",
@@ -396,6 +514,11 @@ _NEEDS_IDEAL = Note(
     " the feed's compressibility is not 1; state the constant in powers of pressure",
     "warning",
     ("feed", "compressibility"),
+)
+_NO_DUTY = Note(
+    "heat-not-known",
+    "no duty is given: the temperature of the outlet is not known",
+    subject=_FEED,
 )
 _MIXING_LEFT_OUT = Note(
     "heat-of-mixing-left-out",

@@ -9,14 +9,13 @@ G, which stays, and the density, which does not::
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Literal
 
 import numpy as np
 
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, refuse
 from core.numerics.straight_line import Number
-from core.reactors.problem import CleanBed, PackedBed
+from core.reactors.problem import CleanBed, PackedBed, SizeDimension
 
 
 @dataclass(frozen=True)
@@ -136,7 +135,7 @@ def _measured_over_computed(made: Friction, clean: CleanBed, length: float) -> f
     return (p1 * p1 - p2 * p2) / computed
 
 
-def bed_length(bed: PackedBed, dimension: Literal["volume", "catalyst_mass"], size: float) -> float:
+def bed_length(bed: PackedBed, dimension: SizeDimension, size: float) -> float:
     """Return the length of the bed of a size, m; not a number where nothing says so."""
     if bed.cross_section is None or (dimension == "catalyst_mass" and bed.bulk_density is None):
         return float(np.nan)

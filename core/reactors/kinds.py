@@ -1,9 +1,17 @@
 """The kinds of reactor: one class each, under the name that a request uses."""
 
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import ReactorKind
-from core.reactors.stirred_tank import StirredTank, TanksInSeries
+from core.reactors.problem import (
+    Batch,
+    PackedBed,
+    PlugFlow,
+    Reactor,
+    RecyclePlugFlow,
+    StirredTank,
+    TanksInSeries,
+    Train,
+)
 
-REACTOR_KINDS: dict[str, type[ReactorKind]] = {
-    kind.kind: kind for kind in (PlugFlow, StirredTank, TanksInSeries, Batch)
+REACTOR_KINDS: dict[str, type[Reactor]] = {
+    kind.kind: kind
+    for kind in (PlugFlow, StirredTank, TanksInSeries, PackedBed, RecyclePlugFlow, Batch, Train)
 }

@@ -1,4 +1,4 @@
-"""The way of one isothermal reaction from its feed to the limit of its conversion.
+"""The way of one reaction from its feed to the limit of its conversion.
 
 Everything that counts along the way (the amount of each substance, the total in
 the phase, the volume) is linear in the conversion X of the key. Measured by the
@@ -8,6 +8,11 @@ conversion of 0.999999 and one a ten-thousandth short of equilibrium are
 computed as well as any other. Rates near equilibrium follow from how far each
 amount is from its equilibrium value, by log1p of a multiple of w.
 
+The temperature is that of the feed, or follows the conversion where no heat is
+exchanged (:mod:`core.reactors.adiabat`): then a gas whose pressure stays has a
+volume that goes with it, and the distance to the temperature at equilibrium is
+known as well as those of the amounts.
+
 Amounts are per amount of key fed: a_i = theta_i + nu_i/|nu_A| X. The direction
 of travel is that of the net reaction at the feed; X and X_limit are negative
 where a feed lies beyond equilibrium.
@@ -16,7 +21,7 @@ where a feed lies beyond equilibrium.
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 from enum import Enum
 from functools import cached_property
 
@@ -26,10 +31,13 @@ from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fact, Fault, Refused, Subject, refuse
 from core.numerics.quadrature import IndexArray
 from core.numerics.roots import find_root
-from core.rates.power_product import PowerProduct, Rows, spread
-from core.rates.rate_law import RateLaw
+from core.rates.pellet import Per
+from core.rates.power_product import FlooredFactor, PowerProduct, Rows, Warmth, spread
+from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
+from core.reactors.adiabat import Adiabat, adiabat
 from core.streams.stream import Stream
+from core.thermochemistry.known_heats import KnownHeats
 
 _EPS = float(np.finfo(float).eps)
 _FAR = 690.0  # logit beyond which the rest of the way is no normal number
@@ -58,6 +66,7 @@ class Place:
     left: FloatArray
     gone: FloatArray
     ln_left: FloatArray
+    memo: dict[str, Warmth] = field(default_factory=dict)
 
     @classmethod
     def at(cls, case: IndexArray, u: FloatArray) -> Place:
@@ -149,10 +158,23 @@ class ReactionPath:
     account : Account
         From the feed to the limit.
     rate : PowerProduct
-        Rate of the key in the direction of travel alone, mol/(m3 s).
+        Rate of the key in the direction of travel alone, by volume or mass as
+        ``per`` says, mol/(m3 s) or mol/(kg s), before the next two.
     opposing : PowerProduct or None
         Rate against the direction of travel over that along it.
     target : ndarray, shape (N,)
+    hindrances : tuple of Hindrance
+        The factors of the denominator.
+    pores : Pores or None
+    per : Per
+        What rates, and so sizes, are counted by.
+    adiabat : Adiabat or None
+        None: the temperature is that of the feed.
+    expands : bool
+        Whether the volume goes with the temperature.
+    at_range : ndarray of bool, shape (N,)
+        Where the limit is no more than how far the heat capacities' ranges let
+        the temperature follow.
     """
 
     lead: tuple[int, ...]
@@ -167,6 +189,12 @@ class ReactionPath:
     account: Account
     rate: PowerProduct
     opposing: PowerProduct | None
+    hindrances: tuple[Hindrance, ...]
+    pores: Pores | None
+    per: Per
+    adiabat: Adiabat | None
+    expands: bool
+    at_range: BoolArray
 
     @property
     def size(self) -> int:
@@ -181,12 +209,61 @@ class ReactionPath:
     @property
     def volume_changes(self) -> bool:
         """Whether the volume changes along the way in any case."""
-        return self.account.trends[-1] is not Trend.STILL
+        return self.account.trends[-1] is not Trend.STILL or self.expands
 
     def volume_ratio(self, place: Place) -> FloatArray:
         """Return the volume over that of the feed, shape (m, q) or (m, 1)."""
         last = self.account.start.shape[1] - 1
-        return self.account.amounts(last, place.gone, place.left, _rows(place.case, self.size))
+        rows = _rows(place.case, self.size)
+        ratio = self.account.amounts(last, place.gone, place.left, rows)
+        if self.expands:
+            warmth = self.warmth(place)
+            assert warmth is not None
+            ratio = ratio * (warmth.temperature / warmth.reference)
+        return ratio
+
+    def warmth(self, place: Place) -> Warmth | None:
+        """Return temperatures, from that of the feed; None where they are that of the feed."""
+        if self.adiabat is None:
+            return None
+        found = place.memo.get("feed")
+        if found is None:
+            x = self.limit[place.case, None] * place.gone
+            above = self.adiabat.from_feed(place.case, x)
+            start = self.adiabat.temperature[place.case, None]
+            found = place.memo["feed"] = Warmth(start + above, start, above)
+        return found
+
+    @cached_property
+    def _limit_warmth(self) -> Warmth:
+        """Temperatures at the limit, shape (N, 1), from that of the feed."""
+        assert self.adiabat is not None
+        every: IndexArray = np.arange(self.size)
+        above = self.adiabat.from_feed(every, self.limit[:, None])
+        start = self.adiabat.temperature[:, None]
+        return Warmth(start + above, start, above)
+
+    def temperature_at(self, place: Place) -> FloatArray | None:
+        """Return the temperature, K, shape (m, q); None where it is that of the feed."""
+        warmth = self.warmth(place)
+        return None if warmth is None else warmth.temperature
+
+    def _from_limit(self, place: Place) -> tuple[Warmth, Warmth] | None:
+        """Return temperatures from that at the limit, and of the limit from that of the feed."""
+        warmth = self.warmth(place)
+        if warmth is None:
+            return None
+        assert self.adiabat is not None
+        case, limit = place.case, self._limit_warmth
+        end = limit.temperature[case]
+        x = self.limit[case, None] * place.gone
+        short = -self.limit[case, None] * place.left
+        above = self.adiabat.from_limit(
+            case, x, short, limit.temperature[:, 0], warmth.temperature - end
+        )
+        return Warmth(warmth.temperature, end, above), Warmth(
+            end, limit.reference[case], limit.above[case]
+        )
 
     def ln_rate(self, place: Place) -> tuple[FloatArray, FloatArray]:
         """Return the net rate of the key, in the direction of travel, in two factors.
@@ -194,19 +271,24 @@ class ReactionPath:
         Returns
         -------
         ln_along : ndarray, shape (m, q) or (m, 1)
-            Logarithm of the rate along the direction of travel, mol/(m3 s).
+            Logarithm of the rate along the direction of travel, SI.
         net : ndarray, shape (m, q) or (m, 1)
             Share of it that the opposing rate leaves, 0 to 1.
         """
         rows = _rows(place.case, self.size)
-        with np.errstate(divide="ignore", invalid="ignore"):
+        warmth = self.warmth(place)
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             absolute = _Logarithms(self, place, rows)
-            along = self.rate.ln_value(absolute, rows)
+            along = self.rate.ln_value(absolute, rows, warmth)
+            for hindrance in self.hindrances:
+                along = along - hindrance.ln_value(absolute, rows, warmth)
+            if self.pores is not None:
+                along = along + self.pores.ln_effectiveness(rows, warmth)
             if self.opposing is None:
-                return along, np.ones((1, 1))
+                return along, _WHOLE
             if self.at_equilibrium.all():
                 return along, -np.expm1(self._ln_opposing(place, rows))
-            ln_opposing = self.opposing.ln_value(absolute, rows)
+            ln_opposing = self.opposing.ln_value(absolute, rows, warmth)
             # Substances of both sides are absent: the one rate is as zero as the other.
             ln_opposing = np.where(np.isnan(ln_opposing), 0.0, ln_opposing)
             if self.at_equilibrium.any():
@@ -217,11 +299,15 @@ class ReactionPath:
 
     def _ln_opposing(self, place: Place, rows: Rows) -> FloatArray:
         assert self.opposing is not None
-        limits = _Limits(self, rows)
-        return self.opposing.ln_ratio(_FromLimit(self, place, rows), limits, rows)
+        both = self._from_limit(place)
+        away = None if both is None else both[0].ln_ratio
+        end = None if both is None else both[1].ln_ratio
+        return self.opposing.ln_ratio(
+            _FromLimit(self, place, rows, away), _Limits(self, rows, end), rows, both
+        )
 
     def rate_at(self, place: Place) -> FloatArray:
-        """Return the net rate of the key in the direction of travel, mol/(m3 s), shape (m, q)."""
+        """Return the net rate of the key in the direction of travel, SI, shape (m, q)."""
         along, net = self.ln_rate(place)
         with np.errstate(over="ignore", invalid="ignore"):
             rate: FloatArray = np.broadcast_to(np.exp(along) * net, place.left.shape)
@@ -234,6 +320,15 @@ class ReactionPath:
             )
         return rate
 
+    def ln_above_floor(self, factor: FlooredFactor, place: Place) -> FloatArray:
+        """Return the logarithm of a driving force over its floor, shape (m, q)."""
+        rows, warmth = _rows(place.case, self.size), self.warmth(place)
+        columns = _Logarithms(self, place, rows)
+        above = rows(factor.excess) + factor.above(columns, self.account.start.shape[1] - 2)
+        if factor.of_temperature and warmth is not None:
+            above = above + warmth.ln_ratio
+        return np.broadcast_to(above, place.left.shape)
+
     def opposing_order_at_start(self) -> FloatArray:
         """Return the power of the way gone that the opposing rate begins with, shape (N,)."""
         if self.opposing is None:
@@ -245,8 +340,32 @@ class ReactionPath:
     def order_at_exhaustion(self) -> FloatArray:
         """Return the power of w that the rate falls with where all is used up, shape (N,)."""
         gone = self.account.end[:, :-1] == 0
-        power: FloatArray = np.where(gone, self.rate.exponents, 0.0).sum(axis=1)
+        power: FloatArray = _powers_of(self.rate, gone)
+        for hindrance in self.hindrances:
+            # The smallest power stands out in the end; a number beside the terms is one of 0.
+            each = [_powers_of(term, gone) for term in hindrance.terms]
+            least = np.minimum.reduce(each)
+            least = np.where(hindrance.leading > 0, np.minimum(least, 0.0), least)
+            power = power - hindrance.power * least
         return power
+
+    def with_target(self, left: FloatArray, gone: FloatArray) -> ReactionPath:
+        """Return the way to other targets.
+
+        Parameters
+        ----------
+        left, gone : ndarray, shape (N,)
+            1 - X/X_limit and X/X_limit.
+        """
+        return replace(self, target=self.limit * gone, target_left=left, target_gone=gone)
+
+
+_WHOLE: FloatArray = np.ones((1, 1))
+
+
+def _powers_of(product: PowerProduct, gone: BoolArray) -> FloatArray:
+    found: FloatArray = np.where(gone, product.exponents, 0.0).sum(axis=1)
+    return found
 
 
 class _Logarithms:
@@ -257,8 +376,15 @@ class _Logarithms:
         self.base = rows(path.ln_key_concentration)
         if path.volume_changes:
             self.base = self.base - np.log(path.volume_ratio(place))
+        self.known: dict[int, FloatArray] = {}
 
     def __call__(self, j: int) -> FloatArray:
+        found = self.known.get(j)
+        if found is None:
+            found = self.known[j] = self._of(j)
+        return found
+
+    def _of(self, j: int) -> FloatArray:
         account, place, rows = self.path.account, self.place, self.rows
         if account.vanishing[j] is False:
             return self.base + np.log(account.amounts(j, place.gone, place.left, rows))
@@ -273,22 +399,28 @@ class _Logarithms:
 class _Limits:
     """L_j at the limit."""
 
-    def __init__(self, path: ReactionPath, rows: Rows) -> None:
+    def __init__(self, path: ReactionPath, rows: Rows, warmth: FloatArray | None) -> None:
         self.path, self.rows = path, rows
+        self.warmth = warmth if path.expands else None
 
     def __call__(self, j: int) -> FloatArray:
         end, base = self.path.account.end, self.path.ln_key_concentration
-        return self.rows(base + np.log(end[:, j]) - np.log(end[:, -1]))
+        value = self.rows(base + np.log(end[:, j]) - np.log(end[:, -1]))
+        return value if self.warmth is None else value - self.warmth
 
 
 class _FromLimit:
     """L_j less its value at the limit."""
 
-    def __init__(self, path: ReactionPath, place: Place, rows: Rows) -> None:
+    def __init__(
+        self, path: ReactionPath, place: Place, rows: Rows, warmth: FloatArray | None
+    ) -> None:
         self.account, self.place, self.rows = path.account, place, rows
         self.base: FloatArray = np.zeros((1, 1))
-        if path.volume_changes:
+        if path.account.trends[-1] is not Trend.STILL:
             self.base = -self(-1)
+        if path.expands and warmth is not None:
+            self.base = self.base - warmth
 
     def __call__(self, j: int) -> FloatArray:
         account, place, rows = self.account, self.place, self.rows
@@ -315,9 +447,11 @@ def reaction_path(
     key: int,
     feed: Stream,
     law: RateLaw,
-    target: FloatArray | float,
+    target: FloatArray | float | None,
     *,
     constant_volume: bool,
+    adiabatic: KnownHeats | None = None,
+    over: tuple[int, ...] = (),
 ) -> ReactionPath:
     """Find the limit of the conversion and lay the way to it.
 
@@ -329,31 +463,38 @@ def reaction_path(
     feed : Stream
         Flows of shape (..., S); a batch's amounts.
     law : RateLaw
-    target : ndarray, shape (...)
-        Conversion asked for.
+    target : ndarray, shape (...), or None
+        Conversion asked for; None for a way without a target, which ends at its limit.
     constant_volume : bool
         Whether a gas keeps its volume (else its pressure).
+    adiabatic : KnownHeats, optional
+        Of the reaction, which then exchanges no heat; left out, it is isothermal.
+    over : tuple of int
+        Leading axes that the cases are to have besides their own.
 
     Raises
     ------
     Refused
         ``one-reaction-only``, ``key-absent``, ``key-not-consumed``,
         ``flow-negative``, ``condition-missing``, ``phase-vanishes``,
-        ``target-out-of-reach``, ``impossible-value``, and what the rate law
-        refuses.
+        ``target-out-of-reach``, ``impossible-value``, ``outside-correlation``,
+        ``property-data-missing``, and what the rate law refuses.
     """
-    _check(reactions, key, feed, law)
+    _check(reactions, key, feed, law, adiabatic is not None)
     law.check(reactions, 0, feed)
     volumetric_flow = _volumetric_flow(feed)
-    forward = law.forward(reactions, 0, feed)
-    ratio = law.reverse_over_forward(reactions, 0, feed)
-    asked = np.asarray(target, dtype=float)
+    follow = adiabatic is not None
+    forward = law.forward(reactions, 0, feed, follow=follow)
+    ratio = law.reverse_over_forward(reactions, 0, feed, follow=follow)
+    hindrances = law.hindrances(reactions, 0, feed, follow=follow)
+    pores = law.pores(reactions, 0, feed, follow=follow)
+    asked = np.zeros(()) if target is None else np.asarray(target, dtype=float)
     lead = np.broadcast_shapes(
         feed.flows.shape[:-1],
         volumetric_flow.shape,
         asked.shape,
-        *(p.ln_factor.shape for p in (forward, ratio) if p is not None),
-        *(p.exponents.shape[:-1] for p in (forward, ratio) if p is not None),
+        over,
+        *_shapes(forward, ratio, hindrances, pores),
     )
     n = math.prod(lead)
 
@@ -370,9 +511,19 @@ def reaction_path(
 
     # The law counts the substance it names; the key reacts |nu_A| / |nu_of| times as fast.
     per_key = np.log(-nu[key] / abs(nu[law.of]))
-    forward = PowerProduct(forward.ln_factor + per_key, forward.exponents, forward.floored)
-    forward = forward.over(lead)
+    forward = replace(forward, ln_factor=forward.ln_factor + per_key).over(lead)
     ratio = None if ratio is None else ratio.over(lead)
+    warm: Adiabat | None = None
+    if adiabatic is not None:
+        warm = adiabat(
+            adiabatic,
+            feed,
+            start[:, :-2],
+            key,
+            flat(np.asarray(feed.temperature, dtype=float)),
+            constant_volume=constant_volume,
+        )
+    expands = warm is not None and feed.phase == "gas" and not constant_volume
 
     largest, reactant = _reach(start, -slope)
     exhausted, ahead = reactant, largest
@@ -386,16 +537,25 @@ def reaction_path(
         opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
         if (onward < 0).any():
             forward = forward.times(ratio.to_the(np.where(onward < 0, 1.0, 0.0)))
+    at_range = np.zeros(n, dtype=bool)
+    if warm is not None and (opposing is not None or target is None):
+        # Beyond the ranges nothing is known of an equilibrium, and none is looked for.
+        within, _ = warm.furthest(ahead)
+        at_range, ahead = np.abs(within) < np.abs(ahead), within
     whole = _to_end(start, slope, ahead)
     limit, end, distance = ahead, whole.end, ahead - asked
     if opposing is not None:
         assert law.reverse is not None
-        share, rest, found = _equilibrium(whole, opposing, np.log(c0), law.reverse.one_equilibrium)
+        search = _Imbalance(whole, opposing, np.log(c0), ahead, warm, expands)
+        share, rest, found = _equilibrium(search, law.reverse.one_equilibrium)
         at_equilibrium = found | unmoved
+        at_range = at_range & ~at_equilibrium
         limit = np.where(found, ahead * share, ahead)
         end = np.where(found[:, None], whole.up_to(share, rest), end)
         # From the nearer end, which is where the limit is known best.
         distance = np.where(found & (share > 0.5), distance - ahead * rest, limit - asked)
+    if target is None:
+        asked, distance = limit, np.zeros(n)
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         gone = np.where(asked == 0, 0.0, asked / limit)
         left = np.where(asked == 0, 1.0, distance / limit)
@@ -414,12 +574,37 @@ def reaction_path(
         account=Account(start, slope * limit[:, None], end),
         rate=forward,
         opposing=opposing,
+        hindrances=tuple(hindrance.over(lead) for hindrance in hindrances),
+        pores=None if pores is None else pores.over(lead),
+        per=law.per,
+        adiabat=warm,
+        expands=expands,
+        at_range=at_range,
     )
-    _check_reach(reactions, feed, law, path)
+    _check_reach(reactions, feed, law, path, open_end=target is None)
     return path
 
 
-def _check(reactions: ReactionSet, key: int, feed: Stream, law: RateLaw) -> None:
+def _shapes(
+    forward: PowerProduct,
+    ratio: PowerProduct | None,
+    hindrances: tuple[Hindrance, ...],
+    pores: Pores | None,
+) -> list[tuple[int, ...]]:
+    """Return the shapes of all that may have leading axes."""
+    products = [forward, *(term for hindrance in hindrances for term in hindrance.terms)]
+    if ratio is not None:
+        products.append(ratio)
+    if pores is not None:
+        products.append(pores.modulus_squared)
+    shapes = [product.ln_factor.shape for product in products]
+    shapes += [product.exponents.shape[:-1] for product in products]
+    for hindrance in hindrances:
+        shapes += [hindrance.leading.shape, hindrance.power.shape]
+    return shapes
+
+
+def _check(reactions: ReactionSet, key: int, feed: Stream, law: RateLaw, adiabatic: bool) -> None:
     if len(reactions.reactions) != 1:
         raise refuse(
             "one-reaction-only",
@@ -451,7 +636,8 @@ def _check(reactions: ReactionSet, key: int, feed: Stream, law: RateLaw) -> None
         missing = [what for what in ("temperature", "pressure") if getattr(feed, what) is None]
     elif feed.liquid_volumetric_flow is None:
         missing = ["volume" if feed.batch else "volumetric_flow"]
-    if law.needs_temperature and feed.temperature is None and "temperature" not in missing:
+    needed = law.needs_temperature or adiabatic
+    if needed and feed.temperature is None and "temperature" not in missing:
         missing.append("temperature")
     faults.extend(
         Fault(
@@ -555,10 +741,52 @@ def _direction(
     return direction, (direction == 0) & ~neither
 
 
-def _equilibrium(
-    whole: Account, opposing: PowerProduct, ln_c0: FloatArray, one: bool
-) -> tuple[FloatArray, FloatArray, BoolArray]:
+@dataclass(frozen=True, eq=False)
+class _Imbalance:
+    """Logarithm of the opposing over the driving rate between the feed and exhaustion, N cases."""
+
+    whole: Account
+    opposing: PowerProduct
+    ln_c0: FloatArray
+    ahead: FloatArray
+    adiabat: Adiabat | None
+    expands: bool
+
+    def __call__(self, logit: FloatArray, case: IndexArray) -> FloatArray:
+        """Return it at logits of the way gone, shape (m,)."""
+        whole, n = self.whole, len(self.ln_c0)
+        gone, left = _share(logit)[:, None], _share(-logit)[:, None]
+        change = whole.change[case]
+        falling = whole.end[case] - change * left
+        amounts = np.where(change < 0, falling, whole.start[case] + change * gone)
+        warmth = None
+        if self.adiabat is not None:
+            above = self.adiabat.from_feed(case, self.ahead[case, None] * gone)
+            start = self.adiabat.temperature[case, None]
+            warmth = Warmth(start + above, start, above)
+        with np.errstate(divide="ignore", invalid="ignore"):
+            ln = np.log(amounts)
+            ln = ln[:, :-1] + (self.ln_c0[case, None] - ln[:, -1:])
+            if self.expands and warmth is not None:
+                ln = ln - warmth.ln_ratio
+            rows = _rows(case, n)
+            value = self.opposing.ln_value(lambda j: ln[:, j, None], rows, warmth)
+        return np.broadcast_to(value[:, 0], logit.shape)
+
+    def at(self, points: FloatArray, cases: IndexArray) -> FloatArray:
+        """Return it at the same logits of some cases, shape (m, p)."""
+        values = np.empty((len(cases), points.size))
+        for first in range(0, len(cases), _SCAN_BLOCK):
+            some = cases[first : first + _SCAN_BLOCK]
+            scanned = self(np.tile(points, some.size), np.repeat(some, points.size))
+            values[first : first + _SCAN_BLOCK] = scanned.reshape(some.size, -1)
+        return values
+
+
+def _equilibrium(imbalance: _Imbalance, one: bool) -> tuple[FloatArray, FloatArray, BoolArray]:
     """Return where equilibrium stands between the feed and exhaustion.
+
+    ``one``: there is one at most, of an isothermal reaction.
 
     Returns
     -------
@@ -567,28 +795,28 @@ def _equilibrium(
     found : ndarray of bool, shape (N,)
         Whether there is one at all.
     """
-    n = len(ln_c0)
-    falls = whole.change < 0
+    n = len(imbalance.ln_c0)
+    moves: IndexArray = np.flatnonzero(imbalance.whole.change.any(axis=1))
+    logit, found = np.full(n, _FAR), np.zeros(n, dtype=bool)
+    several: BoolArray = np.full(len(moves), not one)
+    if one:
+        values = imbalance.at(_ONE, moves)
+        if imbalance.adiabat is not None:
+            # Heats that contradict the constant may turn it on the way.
+            with np.errstate(invalid="ignore"):
+                several = np.asarray(~(np.diff(values, axis=1) >= 0).all(axis=1))
+        steady = moves[~several]
+        logit[steady], found[steady] = _first_root(imbalance, _ONE, values[~several], steady)
+    if several.any():
+        bent = moves[several]
+        logit[bent], found[bent] = _first_root(imbalance, _SCAN, imbalance.at(_SCAN, bent), bent)
+    return _share(logit), _share(-logit), found
 
-    def imbalance(logit: FloatArray, case: IndexArray) -> FloatArray:
-        gone, left = _share(logit)[:, None], _share(-logit)[:, None]
-        change = whole.change[case]
-        falling = whole.end[case] - change * left
-        amounts = np.where(falls[case], falling, whole.start[case] + change * gone)
-        with np.errstate(divide="ignore", invalid="ignore"):
-            ln = np.log(amounts)
-            ln = ln[:, :-1] + (ln_c0[case, None] - ln[:, -1:])
-            rows = _rows(case, n)
-            value = opposing.ln_value(lambda j: ln[:, j, None], rows)
-        return np.broadcast_to(value[:, 0], logit.shape)
 
-    points = _ONE if one else _SCAN
-    values = np.full((n, points.size), -1.0)
-    moves: IndexArray = np.flatnonzero(whole.change.any(axis=1))
-    for first in range(0, len(moves), _SCAN_BLOCK):
-        some = moves[first : first + _SCAN_BLOCK]
-        scanned = imbalance(np.tile(points, some.size), np.repeat(some, points.size))
-        values[some] = scanned.reshape(some.size, -1)
+def _first_root(
+    imbalance: _Imbalance, points: FloatArray, values: FloatArray, cases: IndexArray
+) -> tuple[FloatArray, BoolArray]:
+    """Return the logit at which each case first comes to equilibrium, and whether it does."""
     over = values >= 0
     at = over.argmax(axis=1)
     found: BoolArray = np.asarray(over.any(axis=1))
@@ -597,32 +825,71 @@ def _equilibrium(
     inside: IndexArray = np.flatnonzero(found & (at > 0))
     if inside.size:
         logit[inside] = find_root(
-            lambda x, i: imbalance(x, inside[i]),
+            lambda x, i: imbalance(x, cases[inside[i]]),
             points[at[inside] - 1],
             points[at[inside]],
             subject=("target", "conversion"),
         )
-    return _share(logit), _share(-logit), found
+    return logit, found
 
 
 def _share(logit: FloatArray) -> FloatArray:
     return 1.0 / (1.0 + np.exp(-logit))
 
 
-def _check_reach(reactions: ReactionSet, feed: Stream, law: RateLaw, path: ReactionPath) -> None:
+def _check_reach(
+    reactions: ReactionSet, feed: Stream, law: RateLaw, path: ReactionPath, *, open_end: bool
+) -> None:
     """Refuse a target beyond the limit, and rates without bound on the way to it."""
-    left, account = path.target_left, path.account
-    beyond = (left < 0) | (path.target_gone < 0) | (path.limit == 0) & (path.target != 0)
-    bad = beyond | path.at_equilibrium & (left <= 4 * _EPS)
-    if bad.any():
-        raise out_of_reach(reactions, path, bad)
-    complete = (left == 0)[:, None]
-    orders = path.rate.exponents[:, :-1]
-    if orders.min() < 0:
-        s = orders.shape[1]
-        absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & complete
-        law.check_absences(reactions, 0, absent, orders)
-    if ((account.end[:, -2:] == 0) & complete).any():
+    left = path.target_left
+    if not open_end:
+        beyond = (left < 0) | (path.target_gone < 0) | (path.limit == 0) & (path.target != 0)
+        beyond_range = path.at_range & beyond & (path.target * path.limit > 0)
+        if beyond_range.any():
+            assert path.adiabat is not None
+            i = int(np.flatnonzero(beyond_range)[0])
+            subject = target_subject(i, path.lead)
+            raise path.adiabat.out_of_reach(i, float(path.target[i]), subject)
+        bad = beyond | path.at_equilibrium & (left <= 4 * _EPS)
+        if bad.any():
+            raise out_of_reach(reactions, path, bad)
+    complete = np.zeros(path.size, dtype=bool) if open_end else left == 0
+    check_end(reactions, feed, law, path, complete)
+    if path.adiabat is not None and not open_end:
+        every: IndexArray = np.arange(path.size)
+        there = path.temperature_at(Place(every, left[:, None], path.target_gone[:, None], _WHOLE))
+        assert there is not None
+        path.adiabat.check(path.target, there[:, 0], target_subject(0, ()))
+
+
+def check_end(
+    reactions: ReactionSet,
+    feed: Stream,
+    law: RateLaw,
+    path: ReactionPath,
+    complete: BoolArray,
+) -> None:
+    """Refuse a rate that has no bound at the feed or at the end of the way.
+
+    Parameters
+    ----------
+    complete : ndarray of bool, shape (N,)
+        Which cases go to their limit itself.
+
+    Raises
+    ------
+    Refused
+        ``negative-order-needs-floor``, ``phase-vanishes``.
+    """
+    account, ends = path.account, complete[:, None]
+    terms = [term for hindrance in path.hindrances for term in hindrance.terms]
+    for product in (path.rate, *terms):
+        orders = product.exponents[:, :-1]
+        if orders.min() < 0:
+            s = orders.shape[1]
+            absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & ends
+            law.check_absences(reactions, 0, absent, orders)
+    if ((account.end[:, -2:] == 0) & ends).any():
         raise refuse(
             "phase-vanishes",
             ("target", "conversion"),

@@ -107,6 +107,8 @@ class CleanBed:
         K and Pa, of the gas at the inlet.
     molar_mass : float
         kg/mol.
+    length : float or None
+        Of the bed that it was measured on, m; None: as long as this one.
     """
 
     pressure_drop: float
@@ -114,6 +116,7 @@ class CleanBed:
     temperature: float
     pressure: float
     molar_mass: float
+    length: float | None = None
 
 
 @dataclass(frozen=True)
@@ -159,7 +162,7 @@ class FedStream:
     stream : Stream
         Flows, mol/s.
     until : float
-        s after the start.
+        s after the start; inf: to the end.
     """
 
     stream: Stream
@@ -292,7 +295,10 @@ class ApproachTarget:
 
 @dataclass(frozen=True)
 class SpeciesTarget:
-    """A flow (mol/s; mol), mole fraction, concentration (mol/m3) or yield of a substance."""
+    """A flow (mol/s; mol), mole fraction, concentration (mol/m3) or yield of a substance.
+
+    A yield is the moles of it made over the moles of key fed.
+    """
 
     substance: int
     quantity: Literal["flow", "mole_fraction", "concentration", "yield"]

@@ -1,8 +1,9 @@
 """How big must it be? The question, the answer, and what a reactor kind owes.
 
-One isothermal reaction, a target conversion of the key, and a reactor kind that
-knows its own mole balance. All numbers may be arrays over N cases along leading
-axes, written (...) below; one case is the same with N = 1.
+One reaction, isothermal or without exchange of heat, a target conversion of the
+key, and a reactor kind that knows its own mole balance. All numbers may be arrays
+over N cases along leading axes, written (...) below; one case is the same with
+N = 1.
 """
 
 from __future__ import annotations
@@ -15,10 +16,12 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Note, refuse
 from core.numerics.quadrature import IndexArray
+from core.rates.pellet import Per
 from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.path import ReactionPath, reaction_path
+from core.reactors.path import Place, ReactionPath, reaction_path
 from core.streams.stream import Stream
+from core.thermochemistry.known_heats import KnownHeats
 
 
 class ReactorKind(Protocol):
@@ -36,7 +39,7 @@ class ReactorKind(Protocol):
 
 @dataclass(frozen=True, eq=False)
 class SizingProblem:
-    """A target conversion for one isothermal reaction in a reactor of a kind.
+    """A target conversion for one reaction in a reactor of a kind.
 
     Attributes
     ----------
@@ -47,11 +50,12 @@ class SizingProblem:
     feed : Stream
         Flows of shape (..., S), or the amounts of a batch.
     rate : RateLaw
-        Per volume of fluid.
     target_conversion : float or ndarray, shape (...)
         Of the key; below zero where the reaction is to run backwards. For zero
         the size is zero.
     reactor : ReactorKind
+    adiabatic : KnownHeats or None
+        Of the reaction, which exchanges no heat; None: it is isothermal.
     """
 
     reactions: ReactionSet
@@ -60,6 +64,7 @@ class SizingProblem:
     rate: RateLaw
     target_conversion: FloatArray | float
     reactor: ReactorKind
+    adiabatic: KnownHeats | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -74,11 +79,15 @@ class Limit:
         Whether equilibrium bounds it; else a substance is used up there.
     substance : ndarray of int, shape (...)
         Which one is or would be used up.
+    at_range : ndarray of bool, shape (...)
+        Whether it is no more than how far the ranges of the heat capacities let
+        the temperature of an adiabatic reaction follow.
     """
 
     conversion: FloatArray
     at_equilibrium: BoolArray
     substance: IndexArray
+    at_range: BoolArray
 
 
 @dataclass(frozen=True, eq=False)
@@ -90,14 +99,17 @@ class Profile:
     conversion : ndarray, shape (..., n)
         In equal steps from 0 to the target.
     size : ndarray, shape (..., n)
-        Volume up to there, m3; of a batch the time, s.
+        Volume or mass of catalyst up to there, m3 or kg; of a batch the time, s.
     rate : ndarray, shape (..., n)
-        Of consumption of the key, mol/(m3 s).
+        Of consumption of the key, mol/(m3 s) or mol/(kg s).
+    temperature : ndarray, shape (..., n), or None
+        K; None where it is that of the feed throughout.
     """
 
     conversion: FloatArray
     size: FloatArray
     rate: FloatArray
+    temperature: FloatArray | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -126,27 +138,31 @@ class Sizing:
     Attributes
     ----------
     size : ndarray, shape (...)
-        Volume of the reactor, of all tanks together, m3; of a batch the
-        reaction time, s.
+        Volume of the reactor, of all tanks together, m3, or the mass of catalyst,
+        kg; of a batch the reaction time, s. ``dimension`` says which.
     conversion : ndarray, shape (...)
         The target.
     distance_to_limit : ndarray, shape (...)
         1 - X/X_limit, known to its own last digits.
     limit : Limit
     space_time : ndarray, shape (...), or None
-        V/v at the inlet, s. None for a batch.
+        V/v at the inlet, s. None for a batch, and of a mass of catalyst.
     mean_residence_time : ndarray, shape (...), or None
         Integral of dV/v, s; of tanks the sum of V/v at the outlet of each.
-        None for a batch.
+        None for a batch, and where the volume of the fluid is not known.
     outlet : Stream
         Flows of shape (..., S); for a batch the amounts at the end.
     outlet_rate : ndarray, shape (...)
-        Of consumption of the key at the outlet, mol/(m3 s).
+        Of consumption of the key at the outlet, mol/(m3 s) or mol/(kg s).
     profile : Profile or None
     tanks : Tanks or None
     evaluations : int
         How often the rate was evaluated, counted by single values.
     notes : tuple of Note
+    dimension : "volume", "catalyst_mass" or "time"
+        What ``size`` is.
+    per : Per
+        What the rates are counted by, and a volume is one of.
     """
 
     size: FloatArray
@@ -161,6 +177,8 @@ class Sizing:
     profile: Profile | None = None
     tanks: Tanks | None = None
     notes: tuple[Note, ...] = field(default=())
+    dimension: Literal["volume", "catalyst_mass", "time"] = "volume"
+    per: Per = "fluid-volume"
 
 
 def size_reactor(problem: SizingProblem, points: int = 0) -> Sizing:
@@ -179,14 +197,49 @@ def size_reactor(problem: SizingProblem, points: int = 0) -> Sizing:
         ``flow-negative``, ``condition-missing``, ``phase-vanishes``,
         ``feed-does-not-fit-reactor``, ``target-out-of-reach``,
         ``reaction-does-not-start``, ``negative-order-needs-floor``,
+        ``rate-vanishes``, ``outside-correlation``, ``property-data-missing``,
         ``impossible-value``, and what :mod:`core.rates` and :mod:`core.numerics`
         refuse.
     """
     return problem.reactor.size(problem, points)
 
 
-def path_of(problem: SizingProblem, *, constant_volume: bool) -> ReactionPath:
-    """Return the way from the feed to the limit for a reactor kind, its feed checked."""
+class SizedKind(ReactorKind, Protocol):
+    """What a kind of reactor must answer that also tells what a given size reaches."""
+
+    def rate(self, problem: SizingProblem, size: FloatArray | float, points: int = 0) -> Sizing:
+        """Return what comes out of a size."""
+        ...  # pragma: no cover
+
+
+def rate_reactor(problem: SizingProblem, size: FloatArray | float, points: int = 0) -> Sizing:
+    """Return what comes out of plug flow or a batch of a given size.
+
+    Parameters
+    ----------
+    problem : SizingProblem
+        Whose target is not looked at.
+    size : float or ndarray, shape (...)
+        m3 of fluid or bed, kg of catalyst, as the rate is counted; of a batch s.
+    points : int
+        Of the profile, ends included; 0 for none.
+
+    Raises
+    ------
+    Refused
+        As :func:`size_reactor`.
+    """
+    reactor: SizedKind = problem.reactor  # type: ignore[assignment]
+    return reactor.rate(problem, size, points)
+
+
+def path_of(
+    problem: SizingProblem, *, constant_volume: bool, to_limit: tuple[int, ...] | None = None
+) -> ReactionPath:
+    """Return the way from the feed to the limit for a reactor kind, its feed checked.
+
+    ``to_limit``: without a target, over these leading axes besides its own.
+    """
     reactor, feed = problem.reactor, problem.feed
     if feed.batch != reactor.is_batch:
         raise refuse(
@@ -203,8 +256,10 @@ def path_of(problem: SizingProblem, *, constant_volume: bool) -> ReactionPath:
         problem.key,
         feed,
         problem.rate,
-        problem.target_conversion,
+        problem.target_conversion if to_limit is None else None,
         constant_volume=constant_volume,
+        adiabatic=problem.adiabatic,
+        over=to_limit or (),
     )
 
 
@@ -215,12 +270,28 @@ def outlet_stream(problem: SizingProblem, path: ReactionPath, *, constant_volume
     there = account.up_to(path.target_gone, path.target_left)
     substances = there.shape[1] - 2
     flows = (path.key_flow[:, None] * there[:, :substances]).reshape(*lead, substances)
-    pressure = feed.pressure
+    warmth = path.warmth(target_place(path))
+    temperature, pressure = feed.temperature, feed.pressure
+    warmer: FloatArray | float = 1.0
+    if warmth is not None:
+        temperature = _like(warmth.temperature[:, 0].reshape(lead))
+        warmer = (warmth.temperature / warmth.reference)[:, 0]
     if feed.phase == "gas" and constant_volume and pressure is not None:
-        rise = (there[:, -2] / account.start[:, -2]).reshape(lead)
-        # Of one case a number like that of the feed, of several an array.
-        pressure = pressure * (rise if lead else float(rise))  # type: ignore[assignment]
-    return replace(feed, flows=flows, pressure=pressure)
+        rise = there[:, -2] / account.start[:, -2] * warmer
+        pressure = pressure * _like(rise.reshape(lead))
+    return replace(feed, flows=flows, temperature=temperature, pressure=pressure)
+
+
+def _like(values: FloatArray) -> float:
+    """Return values as a stream has them: of one case a number, of several an array."""
+    return float(values) if values.ndim == 0 else values  # type: ignore[return-value]
+
+
+def target_place(path: ReactionPath) -> Place:
+    """Return where the target is, shape (N, 1)."""
+    left, gone = path.target_left[:, None], path.target_gone[:, None]
+    with np.errstate(divide="ignore"):
+        return Place(np.arange(path.size), left, gone, np.log(left))
 
 
 def limit_of(path: ReactionPath) -> Limit:
@@ -229,6 +300,7 @@ def limit_of(path: ReactionPath) -> Limit:
         path.limit.reshape(path.lead),
         path.at_equilibrium.reshape(path.lead),
         path.exhausted.reshape(path.lead),
+        path.at_range.reshape(path.lead),
     )
 
 

@@ -18,8 +18,8 @@ from core.errors import Note, refuse
 from core.numerics.quadrature import IndexArray
 from core.numerics.roots import find_root
 from core.reactions.reaction_set import ReactionSet
+from core.reactors.advance import check_alive, does_not_start
 from core.reactors.path import Place, ReactionPath, out_of_reach
-from core.reactors.plug_flow import does_not_start
 from core.reactors.sizing import (
     Sizing,
     SizingProblem,
@@ -53,7 +53,7 @@ class _March:
 
 @dataclass(frozen=True)
 class TanksInSeries:
-    """Equal stirred tanks in series, at one temperature and pressure.
+    """Equal stirred tanks in series, at one pressure.
 
     Attributes
     ----------
@@ -106,8 +106,10 @@ def _size(problem: SizingProblem, number: int) -> Sizing:
     path = path_of(problem, constant_volume=False)
     reactions, lead, n = problem.reactions, path.lead, path.size
     case: IndexArray = np.arange(n)
-    rate = path.rate_at(_place(case, path.target_left[:, None], path.target_gone[:, None]))[:, 0]
+    outlet = _place(case, path.target_left[:, None], path.target_gone[:, None])
+    rate = path.rate_at(outlet)[:, 0]
     _check_rate(path, reactions, rate)
+    check_alive(path, reactions, outlet, rate[:, None])
     # Share of the whole way that one tank of V covers per unit of rate: V/(F_A0 X_limit).
     with np.errstate(divide="ignore", invalid="ignore"):
         one_tank = np.where(path.target == 0, 0.0, path.target_gone / rate)
@@ -132,18 +134,21 @@ def _size(problem: SizingProblem, number: int) -> Sizing:
         volume=volume.reshape(lead),
     )
     notes = _notes(path, left, gone, several)
+    by_volume = path.per != "catalyst-mass"
     return Sizing(
         size=(number * volume).reshape(lead),
         conversion=path.target.reshape(lead),
         distance_to_limit=path.target_left.reshape(lead),
         limit=limit_of(path),
-        space_time=(number * volume / v0).reshape(lead),
-        mean_residence_time=residence.reshape(lead),
+        space_time=(number * volume / v0).reshape(lead) if by_volume else None,
+        mean_residence_time=residence.reshape(lead) if path.per == "fluid-volume" else None,
         outlet=outlet_stream(problem, path, constant_volume=False),
         outlet_rate=signed(path, rates)[:, -1].reshape(lead),
         tanks=tanks if number > 1 else None,
         evaluations=evaluations + 3 * n * number,
         notes=tuple(notes),
+        dimension="volume" if by_volume else "catalyst_mass",
+        per=path.per,
     )
 
 

@@ -23,7 +23,7 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
-from core.errors import Amount, Refused, Subject, refuse
+from core.errors import Amount, Fault, Refused, Subject, refuse
 from core.mole_account.extent_range import extent_limits
 from core.numerics.roots import find_root
 from core.reactions.reaction_set import ReactionSet
@@ -234,12 +234,7 @@ def adiabatic_temperature(
     _check_flows(f, out, properties, subject)
     # Which substances a case holds decides how far its own temperature may go.
     present = (f != 0) | (out != 0)
-    faults = [
-        fault
-        for i, p in enumerate(properties)
-        if present[:, i].any()
-        for fault in beyond_range((p,), t0[present[:, i]], subject)
-    ]
+    faults = outside_ranges(properties, present, t0, subject)
     if faults:
         raise Refused(faults)
     start = (f * _sensible(heats.heat_capacities, t0)).sum(axis=-1)
@@ -253,7 +248,7 @@ def adiabatic_temperature(
         gained = (out[case] * _sensible(heats.heat_capacities, t)).sum(axis=-1)
         return np.asarray(gained - out[case] @ r * t - wanted[case])
 
-    reach = np.array([_reach(cp) for cp in heats.heat_capacities])
+    reach = np.array([range_of(cp) for cp in heats.heat_capacities])
     low = np.where(present, reach[:, 0], COLDEST).max(axis=-1)
     high = np.where(present, reach[:, 1], HOTTEST).min(axis=-1)
     bottom, top = np.minimum(low, t0), np.maximum(high, t0)
@@ -262,18 +257,12 @@ def adiabatic_temperature(
     if below.any() or above.any():
         case = int(np.flatnonzero(below | above)[0])
         within = [p for p, there in zip(properties, present[case], strict=True) if there]
-        limit = float(high[case] if above[case] else low[case])
-        raise _out_of_reach(bool(above[case]), limit, within, subject)
+        raise temperature_out_of_reach(bool(above[case]), within, subject)
     # On the side of the inlet where heat is taken up, or given off.
     warmer = excess(t0, rows) < 0
     lower, upper = np.where(warmer, t0, bottom), np.where(warmer, top, t0)
     found: FloatArray = find_root(excess, lower, upper, subject=subject)
-    faults = [
-        fault
-        for i, p in enumerate(properties)
-        if present[:, i].any()
-        for fault in beyond_range((p,), found[present[:, i]], subject)
-    ]
+    faults = outside_ranges(properties, present, found, subject)
     if faults:
         raise Refused(faults)
     return found.reshape(lead)
@@ -302,7 +291,7 @@ def complete_extents(reactions: ReactionSet, reaction: int, flows: FloatArray) -
 
 def temperatures_known(properties: Sequence[StandardProperties]) -> tuple[float, float]:
     """Return the temperatures between which every heat capacity is used, K."""
-    each = [_reach(cp) for cp in _capacities(properties)]
+    each = [range_of(cp) for cp in _capacities(properties)]
     return max(low for low, _ in each), min(high for _, high in each)
 
 
@@ -344,7 +333,32 @@ def _check_flows(
         )
 
 
-def _reach(heat_capacity: HeatCapacity) -> tuple[float, float]:
+def outside_ranges(
+    properties: Sequence[StandardProperties],
+    present: np.ndarray,
+    temperature: FloatArray,
+    subject: Subject,
+) -> list[Fault]:
+    """Return what stands against temperatures of N cases, each holding its own substances.
+
+    Parameters
+    ----------
+    properties : sequence of StandardProperties, length S
+    present : ndarray of bool, shape (N, S)
+    temperature : ndarray, shape (N,)
+        K.
+    subject : Subject
+        What a fault is about.
+    """
+    return [
+        fault
+        for i, p in enumerate(properties)
+        if present[:, i].any()
+        for fault in beyond_range((p,), temperature[present[:, i]], subject)
+    ]
+
+
+def range_of(heat_capacity: HeatCapacity) -> tuple[float, float]:
     """Return the temperatures between which a heat capacity is used, K."""
     if not heat_capacity.bounded:
         return COLDEST, HOTTEST
@@ -352,11 +366,12 @@ def _reach(heat_capacity: HeatCapacity) -> tuple[float, float]:
     return max(low, COLDEST), min(high, HOTTEST)
 
 
-def _out_of_reach(
-    above: bool, limit: float, properties: Sequence[StandardProperties], subject: Subject
+def temperature_out_of_reach(
+    above: bool, properties: Sequence[StandardProperties], subject: Subject
 ) -> Exception:
-    ends = [_reach(cp)[1 if above else 0] for cp in _capacities(properties)]
-    first = properties[int(np.argmin(ends) if above else np.argmax(ends))]
+    """Return the refusal of a temperature above, or below, all that its substances' data know."""
+    ends = [range_of(cp)[1 if above else 0] for cp in _capacities(properties)]
+    at = int(np.argmin(ends) if above else np.argmax(ends))
     return refuse(
         "outside-correlation",
         subject,
@@ -364,7 +379,7 @@ def _out_of_reach(
         " capacity of {substance} ({source}) reaches; state 'heat_capacity' of {substance} under"
         " 'species', or a smaller change.",
         side="above" if above else "below",
-        limit=Amount(limit, "temperature"),
-        substance=first.substance,
-        source=first.sources["heat_capacity"],
+        limit=Amount(ends[at], "temperature"),
+        substance=properties[at].substance,
+        source=properties[at].sources["heat_capacity"],
     )

@@ -6,21 +6,31 @@ is left out where the question asks for it.
 
 from __future__ import annotations
 
-from typing import Any
+import math
 
+import numpy as np
 from marshmallow import fields
 
-from schemas.fields import Choice, Flag, List, Map, Number, Quantity, Tagged, Text, describe
-from schemas.reactors.thermal import thermal
-from schemas.shape import ClosedSchema
+from core.errors import Subject
+from core.reactors.problem import (
+    Batch,
+    CleanBed,
+    FedStream,
+    PackedBed,
+    PlugFlow,
+    RecyclePlugFlow,
+    Size,
+    StirredTank,
+    TanksInSeries,
+)
+from schemas.edge import Json
+from schemas.fields import Choice, Flag, Number, Quantity, describe
+from schemas.reactors.reading import ReactorReading
+from schemas.shape import ClosedSchema, child
 from schemas.streams import StreamSchema
 
 MOST_TANKS = 100
 MOST_TUBES = 1_000_000
-MOST_STAGES = 20
-
-SIZES = ("volume", "catalyst_mass", "time")
-"""The members by which a reactor is sized; each is a dimension's name but the second."""
 
 
 class _SizedSchema(ClosedSchema):
@@ -170,55 +180,6 @@ class RecyclePlugFlowSchema(_SizedSchema):
     )
 
 
-class _StageSchema(ClosedSchema):
-    id = Text(required=True, metadata=describe("Names the stage.", examples=["bed-1"]))
-
-
-class MixSchema(_StageSchema):
-    """A stream joins the train."""
-
-    kind = Choice("mix", required=True)
-    stream = fields.Nested(
-        StreamSchema, required=True, metadata=describe("At its own temperature: a cold shot.")
-    )
-
-
-class CoolSchema(_StageSchema):
-    """A cooler: no reaction; exactly one of 'to' and 'duty'."""
-
-    kind = Choice("cool", required=True)
-    to = Quantity(metadata=describe("Temperature behind it.", examples=["430 degC"]))
-    duty = Quantity(metadata=describe("Heat removed, above zero.", examples=["2.4 MW"]))
-
-
-class HeatSchema(_StageSchema):
-    """A heater: no reaction; exactly one of 'to' and 'duty'."""
-
-    kind = Choice("heat", required=True)
-    to = Quantity(metadata=describe("Temperature behind it.", examples=["610 degC"]))
-    duty = Quantity(metadata=describe("Heat supplied, above zero.", examples=["900 kW"]))
-
-
-class SeparateSchema(_StageSchema):
-    """A separator: shares of substances leave the train."""
-
-    kind = Choice("separate", required=True)
-    removed = Map(
-        Quantity(),
-        required=True,
-        metadata=describe(
-            "Share of each substance that is taken out; one left out stays.",
-            examples=[{"SO3": "99.5 %"}],
-        ),
-    )
-
-
-def _stage_of(kind: type[ClosedSchema]) -> type[ClosedSchema]:
-    """Return the schema of a reactor that stands in a train: with an id and its own thermal."""
-    name = f"{kind.__name__.removesuffix('Schema')}StageSchema"
-    return type(name, (_StageSchema, kind), {"thermal": thermal(), "__doc__": kind.__doc__})
-
-
 CONTINUOUS: dict[str, type[ClosedSchema]] = {
     "plug-flow": PlugFlowSchema,
     "stirred-tank": StirredTankSchema,
@@ -228,39 +189,167 @@ CONTINUOUS: dict[str, type[ClosedSchema]] = {
 }
 """The kinds that a stream flows through, which also stand in trains."""
 
-STAGE_SCHEMAS: dict[str, type[ClosedSchema]] = {
-    **{name: _stage_of(kind) for name, kind in CONTINUOUS.items()},
-    "mix": MixSchema,
-    "cool": CoolSchema,
-    "heat": HeatSchema,
-    "separate": SeparateSchema,
-}
-"""What a train is made of."""
+
+Continuous = PlugFlow | StirredTank | TanksInSeries | PackedBed | RecyclePlugFlow
 
 
-class TrainSchema(ClosedSchema):
-    """Reactors in a row, with mixing, cooling, heating and separating between them."""
+def read_continuous(
+    said: Json, pointer: str, subject: Subject, at: ReactorReading, size: Size | None
+) -> Continuous | None:
+    """Return a reactor that a stream flows through, its size read already; None after a fault."""
+    kind = said["kind"]
+    if kind == "plug-flow":
+        return PlugFlow(size)
+    if kind == "stirred-tank":
+        return StirredTank(size)
+    if kind == "tanks-in-series":
+        at.reader.at((*subject, "number"), child(pointer, "number"))
+        return TanksInSeries(int(said["number"]), size)
+    if kind == "packed-bed":
+        return _read_bed(said, pointer, subject, at, size)
+    ratio = at.quantity(
+        said, "recycle_ratio", pointer, subject, "dimensionless", above=None, at_least=0.0
+    )
+    return None if ratio is None else RecyclePlugFlow(ratio, size)
 
-    kind = Choice("train", required=True)
-    stages = List(
-        Tagged("kind", STAGE_SCHEMAS, metadata=describe("'kind' tells which.")),
-        at_most=MOST_STAGES,
-        required=True,
-        metadata=describe(
-            "In order of flow. Where the question is for a volume, exactly one reactor among them"
-            " has no size."
-        ),
+
+def _read_bed(
+    said: Json, pointer: str, subject: Subject, at: ReactorReading, size: Size | None
+) -> PackedBed | None:
+    reader = at.reader
+    kept = len(reader.faults)
+    bulk = at.quantity(said, "bulk_density", pointer, subject, "mass_concentration")
+    with at.aside():
+        area = _area(said, pointer, subject, at)
+        particle = _particle(said, pointer, subject, at)
+        viscosity = at.quantity(said, "viscosity", pointer, subject, "viscosity")
+    void = at.quantity(said, "void_fraction", pointer, subject, "dimensionless")
+    if void is not None and void >= 1:
+        reader.fault(
+            "impossible-value",
+            child(pointer, "void_fraction"),
+            f"found {said['void_fraction'].text!r}; a void fraction lies between 0 and 1",
+        )
+    reader.at((*subject, "tubes"), child(pointer, "tubes"))
+    falls = said["pressure_drop"]
+    needed = {
+        "cross_section": "cross_section" in said or "tube_diameter" in said,
+        "particle_diameter": "particle_diameter" in said or "particle_volume" in said,
+        "void_fraction": "void_fraction" in said,
+        "viscosity": "viscosity" in said,
+    }
+    for name, there in needed.items() if falls else ():
+        if not there:
+            reader.fault(
+                "field-needed",
+                child(pointer, name),
+                f"the pressure drop of a bed needs its {name.replace('_', ' ')}; state it, or leave"
+                " 'pressure_drop' out",
+            )
+    clean = None
+    if "clean_bed" in said:
+        place, about = child(pointer, "clean_bed"), (*subject, "clean_bed")
+        reader.at(about, place)
+        if not falls:
+            reader.fault(
+                "field-not-used",
+                place,
+                "a measured drop scales the pressure drop, which is not asked for: state"
+                " 'pressure_drop' as true, or leave it out",
+            )
+        with at.aside():
+            clean = _read_clean_bed(said["clean_bed"], place, about, at)
+    if len(reader.faults) > kept:
+        return None
+    return PackedBed(
+        bulk_density=bulk,
+        tubes=int(said["tubes"]),
+        cross_section=area,
+        particle_diameter=particle,
+        void_fraction=void,
+        viscosity=viscosity,
+        pressure_drop=falls,
+        clean_bed=clean,
+        size=size,
     )
 
 
-REACTOR_SCHEMAS: dict[str, type[ClosedSchema]] = {
-    **CONTINUOUS,
-    "batch": BatchSchema,
-    "train": TrainSchema,
-}
-"""One schema for each kind of reactor."""
+def _area(said: Json, pointer: str, subject: Subject, at: ReactorReading) -> float | None:
+    """Return the cross section of one tube, m2, where it is stated."""
+    area = at.quantity(said, "cross_section", pointer, subject, "area")
+    diameter = at.quantity(said, "tube_diameter", pointer, subject, "length")
+    if "cross_section" in said and "tube_diameter" in said:
+        at.reader.fault(
+            "conflicting-fields",
+            child(pointer, "tube_diameter"),
+            "found 'cross_section' and 'tube_diameter'; state one of them",
+        )
+    return area if diameter is None else math.pi / 4 * diameter**2
 
 
-def reactor(**kwargs: Any) -> Tagged:
-    """Return the field of a reactor of any kind."""
-    return Tagged("kind", REACTOR_SCHEMAS, metadata=describe("'kind' tells which."), **kwargs)
+def _particle(said: Json, pointer: str, subject: Subject, at: ReactorReading) -> float | None:
+    """Return 6V/S of a particle, m, where it is stated."""
+    diameter = at.quantity(said, "particle_diameter", pointer, subject, "length")
+    volume = at.quantity(said, "particle_volume", pointer, subject, "volume")
+    surface = at.quantity(said, "particle_surface", pointer, subject, "area")
+    both = [name for name in ("particle_volume", "particle_surface") if name in said]
+    if both and "particle_diameter" in said:
+        at.reader.fault(
+            "conflicting-fields",
+            child(pointer, both[0]),
+            f"found 'particle_diameter' and {both[0]!r}; state the diameter, or volume and surface",
+        )
+    elif len(both) == 1:
+        other = "particle_surface" if both[0] == "particle_volume" else "particle_volume"
+        at.reader.fault(
+            "field-needed",
+            child(pointer, other),
+            "the diameter 6V/S takes the volume and the surface of a particle; state both",
+        )
+    return diameter if volume is None or surface is None else 6 * volume / surface
+
+
+def _read_clean_bed(
+    said: Json, pointer: str, subject: Subject, at: ReactorReading
+) -> CleanBed | None:
+    reader = at.reader
+    drop = at.quantity(said, "pressure_drop", pointer, subject, "pressure_difference")
+    temperature = at.quantity(said, "temperature", pointer, subject, "temperature")
+    pressure = at.quantity(said, "pressure", pointer, subject, "pressure")
+    molar_mass = at.quantity(said, "molar_mass", pointer, subject, "mass_per_amount")
+    length = at.quantity(said, "length", pointer, subject, "length")
+    if at.size_asked and "length" not in said:
+        reader.fault(
+            "field-needed",
+            child(pointer, "length"),
+            "how long this bed will be is what is asked for; state the length of the bed that the"
+            " pressure drop was measured on",
+        )
+    place, about = child(pointer, "flow"), (*subject, "flow")
+    flow = reader.quantity(said["flow"], place, about, "molar_flow", "mass_flow", above=0)
+    if molar_mass is None and at.feed is not None and "molar_mass" not in said:
+        inside = np.where(at.feed.in_phase, at.feed.flows, 0.0)
+        molar_mass = float(inside @ at.reactions.molar_masses / inside.sum())
+    if None in (drop, temperature, pressure, molar_mass) or flow is None:
+        return None
+    assert drop is not None and temperature is not None  # noqa: PT018 - for the type checker
+    assert pressure is not None and molar_mass is not None  # noqa: PT018
+    mass_flow = flow.value * (molar_mass if flow.dimension == "molar_flow" else 1.0)
+    return CleanBed(drop, mass_flow, temperature, pressure, molar_mass, length)
+
+
+def read_batch(said: Json, pointer: str, subject: Subject, at: ReactorReading) -> Batch | None:
+    """Return a batch; None after a fault."""
+    reader = at.reader
+    kept = len(reader.faults)
+    size = at.size_as_asked(said, pointer, subject, ("time",))
+    reader.at((*subject, "hold"), child(pointer, "hold"))
+    fed = None
+    if "fed" in said:
+        place, about = child(pointer, "fed"), (*subject, "fed")
+        reader.at(about, place)
+        stream = at.stream(said["fed"]["stream"], child(place, "stream"), (*about, "stream"))
+        until = at.quantity(said["fed"], "duration", place, about, "time")
+        if stream is not None:
+            fed = FedStream(stream, math.inf if until is None else until)
+    return Batch(said["hold"], fed, size) if len(reader.faults) == kept else None

@@ -4,8 +4,12 @@ from __future__ import annotations
 
 from typing import Any
 
+from core.errors import Subject
+from core.reactors.problem import Adiabatic, Exchange, Isothermal, Thermal
+from schemas.edge import Json
 from schemas.fields import Choice, Quantity, Tagged, describe
-from schemas.shape import ClosedSchema
+from schemas.reactors.reading import ReactorReading
+from schemas.shape import ClosedSchema, child
 
 
 class IsothermalSchema(ClosedSchema):
@@ -71,3 +75,39 @@ def thermal(**kwargs: Any) -> Tagged:
         metadata=describe("'mode' tells which.", default={"mode": "isothermal"}),
         **kwargs,
     )
+
+
+def read_thermal(said: Json, pointer: str, subject: Subject, at: ReactorReading) -> Thermal | None:
+    """Return how heat passes; None after a fault."""
+    reader = at.reader
+    reader.at(subject, pointer)
+    kept = len(reader.faults)
+    if said["mode"] == "adiabatic":
+        return Adiabatic()
+    if said["mode"] == "isothermal":
+        held = at.quantity(said, "temperature", pointer, subject, "temperature")
+        return Isothermal(held) if len(reader.faults) == kept else None
+    coefficient = at.quantity(
+        said, "coefficient_area_per_volume", pointer, subject, "heat_transfer_per_volume"
+    )
+    temperature = at.quantity(said, "utility_temperature", pointer, subject, "temperature")
+    flow = at.quantity(said, "utility_heat_capacity_flow", pointer, subject, "heat_capacity_flow")
+    arrangement = said["arrangement"]
+    reader.at((*subject, "arrangement"), child(pointer, "arrangement"))
+    if arrangement == "constant" and "utility_heat_capacity_flow" in said:
+        reader.fault(
+            "field-not-used",
+            child(pointer, "utility_heat_capacity_flow"),
+            "the utility keeps its temperature ('arrangement' is constant), so that its flow would"
+            " not be heeded: state 'arrangement' as co-current or counter-current, or leave it out",
+        )
+    elif arrangement != "constant" and "utility_heat_capacity_flow" not in said:
+        reader.fault(
+            "field-needed",
+            child(pointer, "utility_heat_capacity_flow"),
+            f"the temperature of a {arrangement} utility changes with the heat that it takes up;"
+            " state its flow times its heat capacity",
+        )
+    if len(reader.faults) > kept or coefficient is None or temperature is None:
+        return None
+    return Exchange(coefficient, temperature, flow, arrangement)

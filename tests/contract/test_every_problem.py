@@ -524,9 +524,11 @@ case(
 # -- reactors
 case(
     "one-reaction-only",
-    volume(reactions__0=SIZE["reactions"][0], reactions=[*SIZE["reactions"], "R -> A"]),
+    volume(reactions=[*SIZE["reactions"], {**SIZE["reactions"][0], "id": "again"}]),
     "/reactions",
 )
+TRAIN = [{"id": "one", "kind": "plug-flow"}, {"id": "two", "kind": "plug-flow"}]
+case("train-sizes", volume(reactor={"kind": "train", "stages": TRAIN}), "/reactor/stages")
 case("feed-does-not-fit-reactor", volume(reactor__kind="batch"), "/feed")
 case(
     "rate-of-needed",
@@ -767,6 +769,8 @@ ELSEWHERE = {
     "unsupported-transfer-coding": "tests/live/test_server.py",
     "expectation-failed": "tests/live/test_server.py",
     "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
+    "size-not-stated": "tests/schemas/reactors/test_reading.py",
+    "cannot-be-free": "tests/schemas/reactors/test_reading.py",
     "not-converged": "tests/core/outlet_analysis/test_solving.py",
     "gas-not-converged": "tests/core/outlet_analysis/test_gases.py",
     "rate-not-finite": "tests/core/reactors/test_sizing_refusals.py",

@@ -7,7 +7,7 @@ from core.notes import NOTES
 
 SOURCES = [
     file.read_text(encoding="utf-8")
-    for file in (*Path("core").rglob("*.py"), *Path("schemas").glob("*.py"))
+    for file in (*Path("core").rglob("*.py"), *Path("schemas").rglob("*.py"))
     if file.name != "notes.py"
 ]
 MADE = re.compile(r'Note\(\s*"([a-z-]+)"')

@@ -36,7 +36,7 @@ def test_floats_and_arrays_give_what_the_function_gives(cases):
     many = [np.broadcast_to(out, len(cases)) for out in together(0.5, rows)]
     for k, case in enumerate(cases):
         expected = [float(v) for v in _calculation(0.5, *case)]
-        assert alone(0.5, np.array(case)) == pytest.approx(expected, rel=1e-13)
+        assert alone(0.5, list(case)) == pytest.approx(expected, rel=1e-13)
         assert [out[k] for out in many] == pytest.approx(expected, rel=1e-13)
 
 
@@ -59,14 +59,14 @@ def test_derivatives_are_those_of_sympy(a, b, t):
     ]
     at = {x: 0.5, sa: a, sb: b, stemp: t}
     expected = [float(sympy.diff(e, s).evalf(30, subs=at)) for e in exprs for s in symbols]
-    slopes = record(_calculation, 4).derivatives().on_floats()(0.5, np.array([a, b, t]))
+    slopes = record(_calculation, 4).derivatives().on_floats()(0.5, [a, b, t])
     assert slopes == pytest.approx(expected, rel=1e-10, abs=1e-12)
 
 
 def test_derivatives_by_some_inputs_are_columns_of_all():
     line = record(_calculation, 4)
-    every = np.array(line.derivatives().on_floats()(0.5, np.array([1.0, 2.0, 300.0])))
-    some = np.array(line.derivatives([1, 3]).on_floats()(0.5, np.array([1.0, 2.0, 300.0])))
+    every = np.array(line.derivatives().on_floats()(0.5, [1.0, 2.0, 300.0]))
+    some = np.array(line.derivatives([1, 3]).on_floats()(0.5, [1.0, 2.0, 300.0]))
     assert np.array_equal(every.reshape(5, 4)[:, [1, 3]], some.reshape(5, 2))
 
 
@@ -83,7 +83,7 @@ def test_calculations_of_one_structure_share_their_text_and_differ_in_numbers():
     for k in (2.5, 3.5):
         line = record(lambda _, a, k=k: [k * a**2], 2)
         texts[line._written("floats")[0]] = True
-        assert line.on_floats()(0.0, np.array([3.0])) == [k * 9.0]
+        assert line.on_floats()(0.0, [3.0]) == [k * 9.0]
     assert len(texts) == 1
 
 
@@ -101,8 +101,8 @@ def test_trial_steps_that_go_astray_neither_overflow_nor_raise():
         lambda _, a: [np.exp(a), np.log(a), np.sqrt(a), power_of_amount(a, 0.5), 1.0 * a**2], 2
     )
     f, g = line.on_floats(), line.on_arrays()
-    assert f(0.0, np.array([1e9]))[0] == pytest.approx(math.exp(700.0))
-    less = f(0.0, np.array([-2.0]))
+    assert f(0.0, [1e9])[0] == pytest.approx(math.exp(700.0))
+    less = f(0.0, [-2.0])
     assert math.isnan(less[1])
     assert math.isnan(less[2])
     assert less[3:] == [0.0, 4.0]
@@ -126,5 +126,5 @@ def test_powers_of_amounts(power, amount):
     expected = amount**power if amount > 0 else (1.0 if power == 0 else 0.0)
     line = record(lambda _, a: [power_of_amount(a, power)], 2)
     if amount > 0 or (power > 0 and power != int(power)):
-        assert line.on_floats()(0.0, np.array([amount]))[0] == pytest.approx(expected, rel=1e-12)
+        assert line.on_floats()(0.0, [amount])[0] == pytest.approx(expected, rel=1e-12)
     assert float(power_of_amount(amount, power)) == pytest.approx(expected, rel=1e-12)

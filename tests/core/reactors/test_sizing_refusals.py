@@ -9,7 +9,6 @@ from core.rates.constants import Arrhenius, Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.kinds import REACTOR_KINDS
 from core.reactors.plug_flow import Batch, PlugFlow
 from core.reactors.sizing import SizingProblem, size_reactor
 from core.reactors.stirred_tank import StirredTank, TanksInSeries
@@ -188,8 +187,7 @@ def test_a_constant_that_needs_a_temperature():
 def test_flows_and_amounts_are_not_mixed_up():
     refusal("feed-does-not-fit-reactor", ("feed",), A, FEED, FIRST, 0.5, Batch())
     charge = liquid(A, {"A": 1000}, batch=True)
-    for kind in ("plug-flow", "stirred-tank"):
-        reactor = REACTOR_KINDS[kind]()
+    for reactor in (PlugFlow(), StirredTank()):
         refusal("feed-does-not-fit-reactor", ("feed",), A, charge, FIRST, 0.5, reactor)
 
 
@@ -236,12 +234,6 @@ def test_a_rate_without_number():
     # 10^500 overflows no logarithm but is no rate.
     law = rate_law(A, {"A": 100}, 1e250)
     refusal("rate-not-finite", ("reactions",), A, FEED, law, 0.5, PlugFlow())
-
-
-def test_registry_names_each_kind_once():
-    assert list(REACTOR_KINDS) == ["plug-flow", "stirred-tank", "tanks-in-series", "batch"]
-    assert all(kind.kind == name for name, kind in REACTOR_KINDS.items())
-    assert {kind.size_dimension for kind in REACTOR_KINDS.values()} == {"volume", "time"}
 
 
 def test_profile_of_many_points_comes_from_one_sweep():

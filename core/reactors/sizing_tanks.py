@@ -1,0 +1,127 @@
+"""How big stirred tanks must be for a target."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+
+import numpy as np
+
+from core.errors import Amount, Fact, Fault, Refused
+from core.reactors import along_path, stirred_tank
+from core.reactors.balances import Balances, Basis, rate_factor
+from core.reactors.marching import Work
+from core.reactors.observed import Fed, Observer
+from core.reactors.problem import (
+    Adiabatic,
+    ConversionTarget,
+    PlugFlow,
+    ReactorProblem,
+    StirredTank,
+    TanksInSeries,
+    Target,
+)
+from core.reactors.scanning import first_size
+from core.reactors.sizing import SizingProblem, size_reactor
+from core.reactors.tanks import through_tanks
+from core.reactors.telling import Course
+
+
+def tanks_for(
+    problem: ReactorProblem, basis: Basis, before: Fed, work: Work, target: Target
+) -> Course:
+    """Return the course through the smallest tanks found that meet a target.
+
+    One reaction whose temperature follows from its conversion is sized by its balance,
+    explicit from the outlet backwards; everything else by a search over the size.
+
+    Raises
+    ------
+    Refused
+        As :func:`core.reactors.sizing.size_reactor`; ``target-out-of-reach``.
+    """
+    conversion = _conversion(problem, before, target)
+    if conversion is None:
+        return _searched(problem, basis, before, work, target)
+    reactor = problem.reactor
+    kind: stirred_tank.StirredTank | stirred_tank.TanksInSeries = stirred_tank.StirredTank()
+    if isinstance(reactor, TanksInSeries):
+        kind = stirred_tank.TanksInSeries(reactor.number)
+    sizing = size_reactor(
+        SizingProblem(
+            problem.reactions,
+            problem.key,
+            problem.feed,
+            problem.laws[0],
+            np.asarray(conversion),
+            kind,
+            problem.heats if isinstance(problem.thermal, Adiabatic) else None,
+        )
+    )
+    size = float(sizing.size) / rate_factor(problem, basis, problem.laws[0].per, 0)
+    near = conversion
+    if isinstance(target, ConversionTarget):
+        near = target.conversion
+    course = through_tanks(problem, basis, before, work, size, near)
+    told = {note.code for note in sizing.notes}
+    return replace(
+        course,
+        limit=along_path.limit_told(sizing),
+        evaluations=work.spent + sizing.evaluations,
+        notes=(*sizing.notes, *(n for n in course.notes if n.code not in told)),
+    )
+
+
+def _conversion(problem: ReactorProblem, before: Fed, target: Target) -> float | None:
+    """Return the conversion of what enters, where that is all there is to meet."""
+    inside = replace(problem, reactor=PlugFlow())
+    if not along_path.has_path(inside):
+        return None
+    if isinstance(target, ConversionTarget):
+        key = problem.key
+        entering = float(problem.feed.flows[key])
+        wanted = target.conversion * float(before.flows[key]) - before.consumed
+        return wanted / entering if entering else target.conversion
+    return along_path.conversion_of(inside, target)
+
+
+def _searched(
+    problem: ReactorProblem, basis: Basis, before: Fed, work: Work, target: Target
+) -> Course:
+    """Return the course through the smallest size at which a state meets the target."""
+    scale = tank_scale(problem, basis)
+
+    def at(size: float) -> tuple[float, Course]:
+        course = through_tanks(problem, basis, before, work, size)
+        gap = course.observer.gap(target).on_floats()
+        return gap(float(course.x[-1]), course.y[-1].tolist())[0], course
+
+    found = first_size(at, scale, ("target",))
+    if found is None:
+        raise _out_of_reach(at, scale)
+    return found
+
+
+def tank_scale(problem: ReactorProblem, basis: Basis) -> float:
+    """Return the size at which the feed's own rates would change all of it, m3 or kg."""
+    inside = Balances(replace(problem, reactor=StirredTank()), basis, problem.feed)
+    inside.check()
+    state = inside.start()
+    rates = np.abs(Observer(inside).see(np.array([0.0]), state[None]).rates[0])
+    moved = float((rates @ np.abs(problem.reactions.nu)).sum())
+    return float(problem.feed.flows.sum()) / moved if moved else 1.0
+
+
+def _out_of_reach(at: Callable[[float], tuple[float, Course]], scale: float) -> Refused:
+    facts: dict[str, Fact] = {}
+    detail = "no size meets the target"
+    try:
+        _, course = at(1e6 * scale)
+    except Refused:
+        pass
+    else:
+        seen = course.observer.see(course.x, course.y)
+        facts["reached"] = Amount(float(seen.conversion[-1]))
+        detail += ": even a very large tank comes to a conversion of {reached}"
+    detail += "; ask for less, or change feed, temperature or pressure"
+    return Refused([Fault("target-out-of-reach", ("target",), detail, facts)])
