@@ -8,14 +8,15 @@ Analysis, 2nd ed., Dekker 2004, ch. 9). What remains when boxes are too narrow t
 halved again is a root at which the function turns, or comes so close to zero that
 rounding cannot tell: it is reported as such and never left out.
 
-The work is bounded by a number of boxes; a case that needs more is told as not complete.
+The work is bounded by a number of boxes. A case that needs more is told as not complete;
+what is left open of it is sampled, and changes of sign are roots all the same.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Protocol
+from typing import Protocol, TypeAlias
 
 import numpy as np
 
@@ -29,7 +30,12 @@ _NARROWEST = 1e-12
 """Of a box, over its place; roots that are closer count as one."""
 _BLOCK = 16_384
 
-_SPLIT, _ABOVE, _BELOW, _RISES, _FALLS, _STUCK = range(6)
+_SPLIT, _ABOVE, _BELOW, _RISES, _FALLS, _STUCK, _OPEN = range(7)
+_SAMPLES = 257  # of a stretch that the boxes did not suffice to settle
+
+
+_Root: TypeAlias = tuple[float, int, int, bool]
+"""Place, case, direction, whether it is simple."""
 
 
 class Enclosed(Protocol):
@@ -193,9 +199,10 @@ def _settle(
         scale = np.maximum(1.0, np.abs(waiting.lower))
         narrow = waiting.upper - waiting.lower <= _NARROWEST * scale
         spent = used[waiting.case] >= most_boxes
-        halting = (waiting.found == _SPLIT) & (narrow | spent)
-        complete[waiting.case[halting & ~narrow]] = False
-        waiting.found[halting] = _STUCK
+        split = waiting.found == _SPLIT
+        waiting.found[split & narrow] = _STUCK
+        waiting.found[split & spent & ~narrow] = _OPEN
+        complete[waiting.case[waiting.found == _OPEN]] = False
         more = waiting.found == _SPLIT
         settled.append(waiting.take(~more))
         waiting = _halved(problem, waiting.take(more))
@@ -271,8 +278,7 @@ def _collect(
     place = [_refined(problem, runs.take(crosses))]
     direction = [(right[crosses] - left[crosses]) // 2]
     simple = [np.ones(len(crosses), dtype=bool)]
-    for where, turn, alone in _doubtful(runs, left, right):
-        x, k = where
+    for x, k, turn, alone in (*_doubtful(runs, left, right), *_sampled(problem, runs)):
         case.append(np.array([k]))
         place.append(np.array([x]))
         direction.append(np.array([turn]))
@@ -304,12 +310,11 @@ def _refined(problem: Enclosed, runs: _Boxes) -> FloatArray:
     return root
 
 
-def _doubtful(
-    runs: _Boxes, left: IntArray, right: IntArray
-) -> list[tuple[tuple[float, int], int, bool]]:
-    """Return roots at turning points, and at ends of the range: place, case, direction, simple."""
-    found: list[tuple[tuple[float, int], int, bool]] = []
+def _doubtful(runs: _Boxes, left: IntArray, right: IntArray) -> list[_Root]:
+    """Return roots at turning points, and at ends of the range."""
+    found: list[_Root] = []
     doubt = (runs.found == _STUCK) | (left == 0) | (right == 0)
+    doubt &= runs.found != _OPEN
     last = -1
     for i in np.flatnonzero(doubt).tolist():
         if i <= last:
@@ -322,6 +327,8 @@ def _doubtful(
             b += 1
         last = b
         before, after = int(left[a]), int(right[b])
+        if (runs.found[a : b + 1] == _OPEN).any():
+            continue
         stuck = [j for j in range(a, b + 1) if runs.found[j] == _STUCK]
         if stuck:
             x = 0.5 * float(runs.lower[stuck[0]] + runs.upper[stuck[-1]])
@@ -332,5 +339,23 @@ def _doubtful(
         else:
             x = float(runs.upper[a])
         turn = (after - before) // 2 if before and after else int(np.sign(after - before))
-        found.append(((x, k), turn, not stuck and abs(turn) == 1 and a == b))
+        found.append((x, k, turn, not stuck and abs(turn) == 1 and a == b))
+    return found
+
+
+def _sampled(problem: Enclosed, runs: _Boxes) -> list[_Root]:
+    """Return roots where the function changes sign on stretches that stayed open."""
+    found: list[_Root] = []
+    for i in np.flatnonzero(runs.found == _OPEN).tolist():
+        k = int(runs.case[i])
+        x = np.linspace(float(runs.lower[i]), float(runs.upper[i]), _SAMPLES)
+        case = np.full(_SAMPLES, k)
+        signs = np.sign(problem.value(x, case))
+        for j in np.flatnonzero(signs[1:] * signs[:-1] < 0).tolist():
+            root = find_root(
+                lambda y, rows, k=k: problem.value(y, np.full(len(rows), k)),
+                x[j : j + 1],
+                x[j + 1 : j + 2],
+            )
+            found.append((float(root[0]), k, int(signs[j + 1]), False))
     return found

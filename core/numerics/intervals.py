@@ -77,7 +77,8 @@ class Enclosure:
     slope : pair of ndarray, optional
         Bounds of the derivative by the coordinate.
     relative : pair of ndarray, optional
-        Bounds of the derivative over the value. One of the two is enough.
+        Bounds of the derivative over the value. One of the two is enough; with none of
+        them, and in all that is made of such, bounds of values alone are kept.
     """
 
     __slots__ = ("_relative", "_sign", "_slope", "lower", "upper")
@@ -103,6 +104,11 @@ class Enclosure:
             else:
                 self._sign = -1 if np.all(self.upper < 0) else 0
         return self._sign
+
+    @property
+    def sloping(self) -> bool:
+        """Whether bounds of the slope are kept."""
+        return self._slope is not None or self._relative is not None
 
     @property
     def values(self) -> Bounds:
@@ -140,6 +146,8 @@ class Enclosure:
         if not isinstance(other, Enclosure):
             return self._shifted(other)
         low, high = added(self.values, other.values)
+        if not (self.sloping and other.sloping):
+            return Enclosure(low, high)
         if self.sign == 0 or self.sign != other.sign:
             slope = added(self.slope, other.slope)
             if self.sign * other.sign == 0:
@@ -160,7 +168,7 @@ class Enclosure:
     def _shifted(self, c: Any) -> Enclosure:
         low, high = outward(self.lower + c, self.upper + c)
         shifted = Enclosure(low, high, self._slope)
-        if self._slope is not None and self._relative is None:
+        if self._relative is None:
             return shifted
         if self.sign and shifted.sign:
             # v/(v + c) has no turning point where neither is zero.
@@ -186,6 +194,8 @@ class Enclosure:
             low, high = outward(self.lower * other.lower, self.upper * other.upper)
         else:
             low, high = product(self.values, other.values)
+        if not (self.sloping and other.sloping):
+            return Enclosure(low, high)
         relative = added(self.relative, other.relative)
         if self.sign and other.sign:
             return Enclosure(low, high, relative=relative)
@@ -198,6 +208,8 @@ class Enclosure:
         if not isinstance(other, Enclosure):
             return self._over(other)
         low, high = quotient(self.values, other.values)
+        if not (self.sloping and other.sloping):
+            return Enclosure(low, high)
         b = other.relative
         relative = added(self.relative, (-b[1], -b[0]))
         if self.sign and other.sign:
@@ -217,6 +229,8 @@ class Enclosure:
 
     def __rtruediv__(self, other: Any) -> Enclosure:
         low, high = quotient((other, other), self.values)
+        if not self.sloping:
+            return Enclosure(low, high)
         b = self.relative
         return Enclosure(low, high, relative=(-b[1], -b[0]))
 
@@ -272,6 +286,9 @@ def _on_enclosures(
 def _exp(a: Enclosure) -> Enclosure:
     low = np.exp(np.minimum(a.lower, LARGEST_EXPONENT))
     high = np.exp(np.minimum(a.upper, LARGEST_EXPONENT))
+    if not a.sloping:
+        low, high = _loosely(low, high)
+        return Enclosure(np.maximum(low, 0.0), high)
     slope = a.slope
     beyond = np.asarray(a.upper) > LARGEST_EXPONENT
     if beyond.any():  # where it stays as it is
@@ -283,24 +300,25 @@ def _exp(a: Enclosure) -> Enclosure:
 
 def _expm1(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.expm1(a.lower), np.expm1(np.minimum(a.upper, LARGEST_EXPONENT)))
-    return Enclosure(low, high, product(_exp(a).values, a.slope))
+    return Enclosure(low, high, product(_exp(a).values, a.slope) if a.sloping else None)
 
 
 def _log(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.log(np.maximum(a.lower, 0.0)), np.log(a.upper))
-    return Enclosure(low, high, a.relative)
+    return Enclosure(low, high, a.relative if a.sloping else None)
 
 
 def _log1p(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.log1p(np.maximum(a.lower, -1.0)), np.log1p(a.upper))
-    return Enclosure(low, high, (a + 1.0).relative)
+    return Enclosure(low, high, (a + 1.0).relative if a.sloping else None)
 
 
 def _to(a: Any, power: Any) -> Enclosure:
     low = np.maximum(a.lower, 0.0)
     p, q = np.power(low, power), np.power(a.upper, power)
     low, high = _loosely(np.minimum(p, q), np.maximum(p, q))
-    return Enclosure(np.maximum(low, 0.0), high, relative=_times(power, a.relative))
+    slope = _times(power, a.relative) if a.sloping else None
+    return Enclosure(np.maximum(low, 0.0), high, relative=slope)
 
 
 def _sqrt(a: Enclosure) -> Enclosure:
@@ -312,9 +330,11 @@ def _amount_to(a: Any, power: Any) -> Enclosure:
     nothing = np.asarray(a.lower) <= 0
     if nothing.any():  # counts as nothing there
         found.lower = np.where(nothing, np.minimum(found.lower, 0.0), found.lower)
+        found._sign = None
+        if not found.sloping:
+            return found
         low, high = found.relative
         found._relative = np.where(nothing, -_INF, low), np.where(nothing, _INF, high)
-        found._sign = None
     return found
 
 
@@ -339,6 +359,8 @@ def _below(a: Any, b: Any, then: Any, otherwise: Any) -> Enclosure:
         )
 
     low, high = chosen(then.values, otherwise.values)
+    if not (then.sloping and otherwise.sloping):
+        return Enclosure(low, high)
     return Enclosure(
         low,
         high,
@@ -365,7 +387,7 @@ def _tanh(a: Enclosure) -> Enclosure:
     low, high = _loosely(np.tanh(a.lower), np.tanh(a.upper))
     square = product((low, high), (low, high))
     rest = np.maximum(1.0 - square[1] - _ULPS, 0.0), 1.0 - np.maximum(square[0], 0.0) + _ULPS
-    return Enclosure(low, high, product(rest, a.slope))
+    return Enclosure(low, high, product(rest, a.slope) if a.sloping else None)
 
 
 def _bessel_ratio(a: Enclosure) -> Enclosure:
@@ -377,7 +399,7 @@ def _bessel_ratio(a: Enclosure) -> Enclosure:
 
     low, high = _loosely(bessel_ratio(a.lower), bessel_ratio(a.upper))
     rest = np.maximum(slope(a.upper) - _ULPS, 0.0), slope(a.lower) + _ULPS
-    return Enclosure(low, high, product(rest, a.slope))
+    return Enclosure(low, high, product(rest, a.slope) if a.sloping else None)
 
 
 def _quiet(f: Callable[..., Any]) -> Callable[..., Any]:

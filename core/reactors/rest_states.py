@@ -247,7 +247,7 @@ class _OneReaction:
             np.where((lower <= 0) & (upper >= 0), 0.25, np.maximum(*ends)) * (1 + wide),
         )
         extent = self._extent(gone, left, both, case)
-        y: list[Any] = [f for f in self.balance.feed[case].T]
+        y: list[Any] = list(self.balance.feed[case].T)
         for i in self._boxed.tolist():
             change = self.change[case, i]
             if self.nu[i] > 0:
@@ -282,27 +282,22 @@ class _OneReaction:
         """Return bounds of dT/du = -dH/C dxi/du."""
         balance, heat = self.balance, self.balance.heat
         assert heat is not None
-        one = Enclosure(t[0], t[1], (1.0, 1.0))
-        nothing: list[Any] = []
-        _, enthalpy = balance.heats.on(OPERATIONS, case)(one, nothing)
-        capacity, change = balance.capacities.on(OPERATIONS, case)(one, nothing)
-        enthalpy, change = enclosed(enthalpy), enclosed(change)
-        low, high = self._enthalpy(t, enthalpy, change, case)
-        total = added(enclosed(capacity).values, product(extent.values, change.values))
+        over = Enclosure(t[0], t[1])
+        capacity, change = (enclosed(v) for v in balance.capacities.on(OPERATIONS, case)(over, []))
+        low, high = self._enthalpy(t, change, case)
+        total = added(capacity.values, product(extent.values, change.values))
         ua = heat.conductance(balance.volume[case], case)
         span = (self.last - self.first)[case]
         along = outward(span * both[0], span * both[1])
         return product(quotient((-high, -low), added(total, (ua, ua))), along)
 
-    def _enthalpy(self, t: Any, enclosure: Enclosure, change: Enclosure, case: IntArray) -> Any:
-        """Return bounds of dH: its values at the middle and what its slope may add."""
+    def _enthalpy(self, t: Any, change: Enclosure, case: IntArray) -> Any:
+        """Return bounds of dH: its value at the middle and what its slope may add."""
         middle, half = 0.5 * (t[0] + t[1]), 0.5 * (t[1] - t[0])
-        point = Enclosure(middle, middle, (0.0, 0.0))
-        at = enclosed(self.balance.heats.on(OPERATIONS, case)(point, [])[1])
-        reach = np.maximum(np.abs(change.lower), np.abs(change.upper)) * half * (1 + 4 * _EPS)
-        reach = reach + 2 * _EPS * np.maximum(np.abs(at.lower), np.abs(at.upper))
-        low = np.fmax(enclosure.lower, at.lower - reach)
-        return low, np.fmin(enclosure.upper, at.upper + reach)
+        at = enclosed(self.balance.heats.on(OPERATIONS, case)(Enclosure(middle, middle), [])[1])
+        reach = np.maximum(np.abs(change.lower), np.abs(change.upper))
+        reach = reach * half * (1 + 4 * _EPS)
+        return outward(at.lower - reach, at.upper + reach)
 
     def value(self, x: FloatArray, case: IntArray) -> FloatArray:
         y = list(self.flows(x, case))

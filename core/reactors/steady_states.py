@@ -14,6 +14,7 @@ import numpy as np
 
 from core.arrays import FloatArray, IntArray
 from core.errors import Amount, Note, refuse
+from core.numerics.all_roots import MOST_BOXES
 from core.numerics.straight_line import Number
 from core.reactors.balances import Balances, Basis
 from core.reactors.problem import (
@@ -137,7 +138,8 @@ def steady_states(
     _check_unreacted(balance)
     assert len(balance.nu) == 1
     real = problem.gas is not None and feed.phase == "gas"
-    found = rest_states(balance, **({"most_boxes": _MOST_BOXES_REAL_GAS} if real else {}))
+    most = _MOST_BOXES_REAL_GAS if real else MOST_BOXES
+    found = rest_states(balance, most_boxes=most)
     if not len(found.case):
         raise _beyond(balance)
     states = [_state(problem, feed, found, k) for k in range(len(found.case))]

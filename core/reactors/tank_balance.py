@@ -88,6 +88,14 @@ class TankHeat:
         passed: FloatArray = -capacity * np.expm1(-each / capacity)
         return passed
 
+    def conductance_slope(self, volume: FloatArray, case: IntArray | slice) -> FloatArray:
+        """Return the derivative of :meth:`conductance` by the volume, W/(K m3)."""
+        per: FloatArray = self.conductance_per_volume[case]
+        if self.utility_capacity is None:
+            return per
+        units = per * volume / self.utility_capacity[case]
+        return per / (1.0 + units) ** 2 if self.utility_mixed else per * np.exp(-units)
+
 
 @dataclass(frozen=True, eq=False)
 class TankBalance:
@@ -154,6 +162,19 @@ class TankBalance:
         """Of (T,): heat capacity flow of the feed, W/K, and its change by each extent."""
         return self.heats.derivatives()
 
+    @cached_property
+    def _both(self) -> StraightLine:
+        lines = self.heats, self.capacities
+        return StraightLine(lines[0].tape, 1, lines[0].outputs + lines[1].outputs)
+
+    def warmth(
+        self, t: FloatArray, case: IntArray
+    ) -> tuple[Number, list[Number], Number, list[Number]]:
+        """Return ``heats`` and ``capacities`` at temperatures, shape (m,), at once."""
+        gained, *rest = self._both.on_arrays(case)(t, np.zeros((0, len(t))))
+        r = len(self.nu)
+        return gained, rest[:r], rest[r], rest[r + 1 :]
+
     def imbalance(
         self, t: FloatArray, extents: FloatArray, volume: FloatArray, case: IntArray
     ) -> tuple[FloatArray, FloatArray, FloatArray]:
@@ -168,17 +189,15 @@ class TankBalance:
         """
         heat = self.heat
         assert heat is not None
-        nothing = np.zeros((0, len(t)))
-        gained, *enthalpies = self.heats.on_arrays(case)(t, nothing)
-        capacity, *changes = self.capacities.on_arrays(case)(t, nothing)
+        gained, enthalpies, capacity, changes = self.warmth(t, case)
         ua = heat.conductance(volume, case)
         terms = [gained, ua * (t - heat.utility_temperature[case])]
         terms += [xi * dh for xi, dh in zip(extents, enthalpies, strict=True)]
         slope = capacity + ua
         for xi, change in zip(extents, changes, strict=True):
             slope = slope + xi * change
-        left: FloatArray = np.sum(np.broadcast_arrays(*terms), axis=0)
-        size = np.sum([np.abs(v) + np.zeros(len(t)) for v in terms], axis=0)
+        each = rows_of(terms, len(t))
+        left, size = each.sum(axis=0), np.abs(each).sum(axis=0)
         return left, slope + np.zeros(len(t)), 8 * _EPS * size
 
     def temperature(
@@ -251,7 +270,7 @@ class TankBalance:
         m = len(case)
         state = flows if temperature is None else np.concatenate([flows, temperature[None]])
         values = self.slopes.on_arrays(case)(np.zeros(m), state)
-        table = np.array([np.broadcast_to(v, m) for v in values]).reshape(r, -1, m)
+        table = rows_of(values, m).reshape(r, len(values) // r, m)
         present = np.where(self.nu.any(axis=0)[:, None], table[:, :s], 0.0)
         by_extent = np.einsum("jim,ki->mjk", present, self.nu) * volume[:, None, None]
         space_time = self.space_time[case] * volume / self.volume[case]
@@ -260,11 +279,11 @@ class TankBalance:
         heat = self.heat
         assert heat is not None
         rates = self.rates.on_arrays(case)(np.zeros(m), state)
-        extents = np.array([np.broadcast_to(v, m) for v in rates]) * volume
+        extents = rows_of(rates, m) * volume
         _, slope, _ = self.imbalance(temperature, extents, volume, case)
         stored = slope - heat.conductance(volume, case)
         enthalpies = self.heats.on_arrays(case)(temperature, np.zeros((0, m)))[1:]
-        warming = np.array([np.broadcast_to(-v, m) for v in enthalpies]).T / stored[:, None]
+        warming = -rows_of(enthalpies, m).T / stored[:, None]
         by_t = (table[:, s] * volume).T
         return Departures(space_time, by_extent, by_t, warming, slope / stored)
 
@@ -342,6 +361,14 @@ class Departures:
             growth[finite] = np.linalg.eigvals(jacobians[finite]).real.max(axis=-1)
         off = 16 * _EPS * np.abs(jacobians).max(axis=(1, 2), initial=0.0)
         return growth / self.space_time, off / self.space_time
+
+
+def rows_of(values: Sequence[Any], m: int) -> FloatArray:
+    """Return what a recorded calculation gives, numbers among it, as rows of m."""
+    table = np.empty((len(values), m))
+    for row, value in zip(table, values, strict=True):
+        row[:] = value
+    return table
 
 
 def _numbers(values: FloatArray) -> Any:

@@ -1,0 +1,638 @@
+"""States of rest of a stirred tank with several reactions: found, not proven; N cases at once.
+
+Unknown are the flows that leave, and the temperature. Newton's method with exact
+derivatives, its steps shortened until the imbalance falls, and no flow let below a
+fiftieth of itself in one step, is tried first; then steps in pseudo-time, which follow
+the tank as it would move (C. T. Kelley, D. E. Keyes, SIAM J. Numer. Anal. 35 (1998)
+508-523: switched evolution relaxation); then both from other compositions, seeded. What
+is left is reached by following the branch of states from a tank so small that nothing
+reacts, in the logarithm of its volume, around its turning points (H. B. Keller, in
+Applications of Bifurcation Theory, Academic Press 1977, 359-384: pseudo-arclength).
+
+A state is accepted by its backward error: each balance is met to 1e-11 of the sum of
+what enters, what leaves and what the reactions turn over in either direction. No more
+can be asked for where fast reversible reactions nearly cancel.
+
+That branch can pass through a volume several times. All its states there are listed;
+there may be others on branches of their own, of which nothing is claimed.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from core.arrays import BoolArray, FloatArray, IntArray
+from core.numerics.linear import solve_stack
+from core.numerics.straight_line import StraightLine
+from core.reactors.tank_balance import TankBalance, rows_of
+
+ACCEPTED = 1e-11
+"""Backward error."""
+_TRACE = 1e-13
+"""Of all that is fed; how far a substance is off counts against no less."""
+_FLOOR = 0.02  # of a flow that one step may leave
+_KELVINS = 100.0  # what counts as much as all that is fed, in norms
+_LARGEST_CHANGE = 0.6  # of the temperature in one step, in these
+_NEWTON_STEPS = 40
+_PSEUDO_STEPS = 150
+_RESTARTS = 6
+_SHORTENED = (1.0, 0.5, 0.2, 0.05, 0.01)
+_MOST_POINTS = 3_000
+_FIRST_SHARE = 1e-4  # of the feed that reacts where the branch begins
+_FARTHEST = float(np.log(1e3))  # beyond the volume asked for
+_LARGEST_STEP, _SMALLEST_STEP = 0.4, 1e-9
+_SAME = 1e-6  # of two states, that are one
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """States of m cases; not accepted ones without meaning.
+
+    Attributes
+    ----------
+    flows : ndarray, shape (S, m)
+        mol/s.
+    temperature : ndarray, shape (m,), or None
+        K.
+    accepted : ndarray of bool, shape (m,)
+    error : ndarray, shape (m,)
+        Backward error.
+    stage : ndarray of int, shape (m,)
+        What found it: 1 Newton's method, 2 pseudo-time, 3 another start, 4 the branch;
+        0 nothing.
+    """
+
+    flows: FloatArray
+    temperature: FloatArray | None
+    accepted: BoolArray
+    error: FloatArray
+    stage: IntArray
+
+
+@dataclass(frozen=True, eq=False)
+class Branch:
+    """States of one case along the volume, in the order in which they follow each other.
+
+    Attributes
+    ----------
+    ln_volume : ndarray, shape (p,)
+        Logarithm of m3.
+    flows : ndarray, shape (p, S)
+        mol/s.
+    temperature : ndarray, shape (p,), or None
+        K.
+    whole : bool
+        Whether the branch was followed to the end asked for.
+    """
+
+    ln_volume: FloatArray
+    flows: FloatArray
+    temperature: FloatArray | None
+    whole: bool
+
+
+class Network:
+    """The balances of a tank in scaled numbers: flows over all that is fed, hundreds of kelvins."""
+
+    def __init__(self, balance: TankBalance) -> None:
+        self.balance = balance
+        self.heated = balance.heat is not None
+        self.reactions, self.substances = balance.nu.shape
+        self.size = self.substances + self.heated
+        self.fed: FloatArray = balance.feed.sum(axis=1)
+        rates, slopes = balance.rates, balance.slopes
+        self._line = StraightLine(rates.tape, rates.inputs, rates.outputs + slopes.outputs)
+
+    @cached_property
+    def start(self) -> FloatArray:
+        """The feed with nothing reacted, shape (N, n)."""
+        y = self.balance.feed / self.fed[:, None]
+        if not self.heated:
+            return y
+        n = self.balance.size
+        rows: IntArray = np.arange(n)
+        t, _ = self.balance.temperature(np.zeros((self.reactions, n)), self.balance.volume, rows)
+        return np.concatenate([y, t[:, None] / _KELVINS], axis=1)
+
+    @cached_property
+    def possible(self) -> BoolArray:
+        """Which substances are fed, or made of such as can be there, shape (N, S).
+
+        The others stay at nothing exactly; what a search leaves of them is rounding.
+        """
+        balance, n = self.balance, self.balance.size
+        rows: IntArray = np.arange(n)
+        there: BoolArray = balance.feed > 0
+        t = self.temperature(self.start)
+        # Amounts that no equilibrium is likely to balance.
+        amounts = self.fed[:, None] * (1.0 + np.sqrt(np.arange(2.0, 2.0 + self.substances)))
+        for _ in range(self.substances):
+            state = np.where(there, amounts, 0.0).T
+            if t is not None:
+                state = np.concatenate([state, t[None]])
+            with np.errstate(all="ignore"):
+                rates = balance.rates.on_arrays(rows)(np.zeros(n), state)
+            more = there.copy()
+            for rate, nu in zip(rates, balance.nu, strict=True):
+                sign = np.broadcast_to(np.sign(rate), n)
+                more |= (np.outer(sign, nu) > 0) & np.isfinite(sign)[:, None]
+            if (more == there).all():
+                break
+            there = more
+        return there
+
+    def flows(self, y: FloatArray, case: IntArray) -> FloatArray:
+        """Return flows, shape (S, m), mol/s."""
+        return (y[:, : self.substances] * self.fed[case, None]).T
+
+    def temperature(self, y: FloatArray) -> FloatArray | None:
+        """Return temperatures, shape (m,), K."""
+        return y[:, -1] * _KELVINS if self.heated else None
+
+    def evaluate(self, y: FloatArray, ln_v: FloatArray, case: IntArray) -> _Values:
+        """Return the balances at m states.
+
+        Parameters
+        ----------
+        y : ndarray, shape (m, n)
+        ln_v : ndarray, shape (m,)
+            Of the volume over that of the case.
+        case : ndarray of int, shape (m,)
+        """
+        with np.errstate(all="ignore"):
+            return self._evaluate(y, ln_v, case)
+
+    def _evaluate(self, y: FloatArray, ln_v: FloatArray, case: IntArray) -> _Values:
+        balance, r, s = self.balance, self.reactions, self.substances
+        m, fed = len(case), self.fed[case]
+        volume = balance.volume[case] * np.exp(ln_v)
+        state = self.flows(y, case)
+        t = self.temperature(y)
+        if t is not None:
+            state = np.concatenate([state, t[None]])
+        values = self._line.on_arrays(case)(np.zeros(m), state)
+        table = rows_of(values, m)
+        rates = table[:r] * (volume / fed)
+        # By scaled flows, then by scaled temperature.
+        slopes = table[r:].reshape(r, self.size, m) * (volume / fed)
+        slopes[:, :s] *= fed
+        if t is not None:
+            slopes[:, s] *= _KELVINS
+        nu = balance.nu
+        made = np.einsum("jm,ji->mi", rates, nu)
+        residual = np.empty((m, self.size))
+        jacobian = np.empty((m, self.size, self.size))
+        scale, along = np.empty((m, self.size)), np.empty((m, self.size))
+        entering = balance.feed[case] / fed[:, None]
+        residual[:, :s] = entering + made - y[:, :s]
+        jacobian[:, :s] = np.einsum("jkm,ji->mik", slopes, nu)
+        jacobian[:, np.arange(s), np.arange(s)] -= 1.0
+        along[:, :s] = made
+        # What goes to and fro, of which the rate is the difference.
+        turned = np.abs(rates) + (np.abs(slopes[:, :s]) * np.abs(y[:, :s].T)).sum(axis=1)
+        scale[:, :s] = (
+            _TRACE + entering + np.abs(y[:, :s]) + np.einsum("jm,ji->mi", turned, np.abs(nu))
+        )
+        if t is not None:
+            self._energy(t, volume, case, rates, slopes, turned, (residual, jacobian, scale, along))
+        return _Values(residual, jacobian, scale, along)
+
+    def _energy(
+        self,
+        t: FloatArray,
+        volume: FloatArray,
+        case: IntArray,
+        rates: FloatArray,
+        slopes: FloatArray,
+        turned: FloatArray,
+        into: tuple[FloatArray, FloatArray, FloatArray, FloatArray],
+    ) -> None:
+        """Fill in the last row: the heat balance over what warms the feed by 100 K."""
+        balance, heat = self.balance, self.balance.heat
+        assert heat is not None
+        residual, jacobian, scale, along = into
+        m, fed = len(case), self.fed[case]
+        gained, enthalpies, capacity, changes = balance.warmth(t, case)
+        ua = heat.conductance(volume, case)
+        per = 1.0 / (np.abs(capacity) * _KELVINS)
+        dh = rows_of(enthalpies, m) * (fed * per)
+        dc = rows_of(changes, m) * (fed * per)
+        away = t - heat.utility_temperature[case]
+        given = (rates * dh).sum(axis=0)
+        residual[:, -1] = -(gained * per + given + ua * away * per)
+        jacobian[:, -1] = -np.einsum("jkm,jm->mk", slopes, dh)
+        own = (capacity + ua) * per + (rates * dc).sum(axis=0)
+        jacobian[:, -1, -1] -= own * _KELVINS
+        scale[:, -1] = np.abs(gained) * per + np.abs(ua * away) * per
+        scale[:, -1] += (turned * np.abs(dh)).sum(axis=0) + t / _KELVINS
+        by_volume = heat.conductance_slope(volume, case) * volume
+        along[:, -1] = -(given + by_volume * away * per)
+
+    def stepped(self, y: FloatArray, step: FloatArray, case: IntArray) -> FloatArray:
+        """Return states after a step, no flow below a share of itself."""
+        s = self.substances
+        new = y + step
+        new[:, :s] = np.maximum(new[:, :s], _FLOOR * y[:, :s])
+        new[:, :s] *= self.possible[case]
+        if self.heated:
+            heat = self.balance.heat
+            assert heat is not None
+            change = np.clip(step[:, -1], -_LARGEST_CHANGE, _LARGEST_CHANGE)
+            new[:, -1] = np.clip(
+                y[:, -1] + change, heat.coldest / _KELVINS, heat.hottest / _KELVINS
+            )
+        return new
+
+
+@dataclass(frozen=True, eq=False)
+class _Values:
+    """Balances of m states: what is left over, its derivatives, what it is measured by.
+
+    ``along`` is the derivative by the logarithm of the volume.
+    """
+
+    residual: FloatArray
+    jacobian: FloatArray
+    scale: FloatArray
+    along: FloatArray
+
+    @property
+    def error(self) -> FloatArray:
+        with np.errstate(all="ignore"):
+            each = np.where(self.residual == 0, 0.0, np.abs(self.residual) / self.scale)
+        worst: FloatArray = each.max(axis=1)
+        return np.where(np.isfinite(worst), worst, np.inf)
+
+
+def _solved(matrices: FloatArray, right: FloatArray) -> FloatArray:
+    """Return the solutions of m systems, zero where there is none."""
+    good = np.isfinite(matrices).all(axis=(1, 2)) & np.isfinite(right).all(axis=1)
+    found = np.zeros_like(right)
+    if good.any():
+        found[good] = solve_stack(matrices[good], right[good, :, None])[:, :, 0]
+    return np.where(np.isfinite(found), found, 0.0)
+
+
+def newton(
+    network: Network, y: FloatArray, ln_v: FloatArray, case: IntArray, steps: int = _NEWTON_STEPS
+) -> tuple[FloatArray, FloatArray]:
+    """Return states after Newton's method at held volumes, and their backward errors."""
+    y = y.copy()
+    errors = np.full(len(case), np.inf)
+    rows: IntArray = np.arange(len(case))
+    for _ in range(steps):
+        at = network.evaluate(y[rows], ln_v[rows], case[rows])
+        errors[rows] = at.error
+        going = errors[rows] > ACCEPTED
+        if not going.any():
+            break
+        rows = rows[going]
+        residual, scale = at.residual[going], at.scale[going]
+        step = _solved(at.jacobian[going], -residual)
+        # Traces count less on the way than in the end.
+        weight = 1.0 / (scale + 1e-4)
+        before = np.sqrt(((residual * weight) ** 2).sum(axis=1))
+        waiting: IntArray = np.arange(len(rows))
+        new = y[rows]
+        for share in _SHORTENED:
+            tried = network.stepped(y[rows[waiting]], share * step[waiting], case[rows[waiting]])
+            new[waiting] = tried
+            r = network.evaluate(tried, ln_v[rows[waiting]], case[rows[waiting]]).residual
+            with np.errstate(all="ignore"):
+                after = np.sqrt(((r * weight[waiting]) ** 2).sum(axis=1))
+            waiting = waiting[~(after <= before[waiting] * (1 - 1e-3 * share))]
+            if not waiting.size:
+                break
+        y[rows] = new
+    else:
+        errors[rows] = network.evaluate(y[rows], ln_v[rows], case[rows]).error
+    return y, errors
+
+
+def pseudo_time(
+    network: Network, y: FloatArray, ln_v: FloatArray, case: IntArray, steps: int = _PSEUDO_STEPS
+) -> tuple[FloatArray, FloatArray]:
+    """Return states after steps in pseudo-time, each longer as the imbalance falls."""
+    y = y.copy()
+    n = network.size
+    length = np.full(len(case), 1e-2)
+    errors, before = np.full(len(case), np.inf), np.full(len(case), np.nan)
+    rows: IntArray = np.arange(len(case))
+    for _ in range(steps):
+        at = network.evaluate(y[rows], ln_v[rows], case[rows])
+        errors[rows] = at.error
+        going = errors[rows] > ACCEPTED
+        if not going.any():
+            break
+        rows = rows[going]
+        residual = at.residual[going]
+        size = np.sqrt((residual**2).sum(axis=1))
+        with np.errstate(all="ignore"):
+            ratio = np.clip(np.nan_to_num(before[rows] / size, nan=1.5, posinf=3.0), 0.3, 3.0)
+        length[rows] = np.clip(length[rows] * ratio, 1e-8, 1e12)
+        before[rows] = size
+        inverse = np.eye(n) / length[rows, None, None]
+        step = _solved(inverse - at.jacobian[going], residual)
+        y[rows] = network.stepped(y[rows], step, case[rows])
+    return y, errors
+
+
+def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -> Found:
+    """Return one state of rest of each of N cases, at its own volume.
+
+    Parameters
+    ----------
+    balance : TankBalance
+    seed : int
+        Of the other starts.
+    branch : bool
+        Whether to follow the branch where nothing else succeeds.
+    """
+    network = Network(balance)
+    n = balance.size
+    y = network.start.copy()
+    errors, stage = np.full(n, np.inf), np.zeros(n, dtype=np.intp)
+    at_volume = np.zeros(n)
+
+    def attempt(method: _Method, starts: FloatArray, rows: IntArray, number: int) -> FloatArray:
+        if not rows.size:
+            return starts
+        found, error = method(network, starts, at_volume[rows], rows)
+        good = (error <= ACCEPTED) & (errors[rows] > ACCEPTED)
+        y[rows[good]], errors[rows[good]], stage[rows[good]] = found[good], error[good], number
+        return found
+
+    rows: IntArray = np.arange(n)
+    attempt(newton, network.start, rows, 1)
+    for trial in range(1 + _RESTARTS):
+        rows = np.flatnonzero(errors > ACCEPTED)
+        if not rows.size:
+            break
+        number = 2 if trial == 0 else 3
+        starts = network.start[rows]
+        if trial:
+            starts = _other_starts(network, rows, np.random.default_rng([seed, trial]))
+            attempt(newton, starts, rows, number)
+            left = errors[rows] > ACCEPTED
+            rows, starts = rows[left], starts[left]
+        moved = attempt(pseudo_time, starts, rows, number)
+        left = errors[rows] > ACCEPTED
+        attempt(newton, moved[left], rows[left], number)
+    if branch:
+        for k in np.flatnonzero(errors > ACCEPTED).tolist():
+            one = follow(network, k, farthest=0.0)
+            states = crossings(network, k, one, lambda ln_v, _y: ln_v, 0.0)
+            if states is not None and len(states):
+                y[k], errors[k], stage[k] = states[0, :-1], 0.0, 4
+    y, errors = _polished(network, y, errors)
+    rows = np.arange(n)
+    return Found(network.flows(y, rows), network.temperature(y), errors <= ACCEPTED, errors, stage)
+
+
+_Method = Callable[[Network, FloatArray, FloatArray, IntArray], tuple[FloatArray, FloatArray]]
+
+
+def _other_starts(network: Network, rows: IntArray, rng: np.random.Generator) -> FloatArray:
+    """Return compositions that some random extents of the reactions lead to."""
+    balance, s = network.balance, network.substances
+    y = network.start[rows].copy()
+    for _ in range(2):
+        for j in rng.permutation(network.reactions).tolist():
+            nu = balance.nu[j]
+            with np.errstate(all="ignore"):
+                ahead = np.where(nu < 0, y[:, :s] / np.maximum(-nu, 1e-300), np.inf).min(axis=1)
+            share = rng.beta(0.7, 0.7, len(rows)) * 0.999
+            y[:, :s] = np.maximum(y[:, :s] + np.outer(share * ahead, nu), 0.0)
+    if network.heated:
+        y[:, -1] *= np.exp(rng.uniform(-0.1, 0.5, len(rows)))
+    return network.stepped(y, np.zeros_like(y), rows)
+
+
+def _polished(network: Network, y: FloatArray, errors: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Return states after a last Newton step in which elements are balanced to rounding.
+
+    The balances of as many substances as there are independent reactions stay as they
+    are; the others are replaced by combinations without a rate, which are linear.
+    """
+    rows: IntArray = np.flatnonzero(errors <= ACCEPTED)
+    if not rows.size:
+        return y, errors
+    s = network.substances
+    turn, kept = _rotation(network.balance.nu)
+    best, error = y[rows].copy(), errors[rows].copy()
+    current = best.copy()
+    zeros = np.zeros(len(rows))
+    entering = network.balance.feed[rows] / network.fed[rows, None]
+    for _ in range(3):
+        at = network.evaluate(current, zeros, rows)
+        residual, jacobian = at.residual.copy(), at.jacobian.copy()
+        # Rows without a rate: invariants of the reactions.
+        residual[:, kept:s] = (entering - current[:, :s]) @ turn[kept:].T
+        jacobian[:, kept:s] = 0.0
+        jacobian[:, kept:s, :s] = -turn[kept:]
+        residual[:, :kept] = at.residual[:, :s] @ turn[:kept].T
+        jacobian[:, :kept] = np.einsum("ki,mij->mkj", turn[:kept], at.jacobian[:, :s])
+        step = _solved(jacobian, -residual)
+        current = network.stepped(current, step, rows)
+        now = network.evaluate(current, zeros, rows).error
+        good = now <= ACCEPTED
+        best[good], error[good] = current[good], now[good]
+    y[rows], errors[rows] = best, error
+    return y, errors
+
+
+def _rotation(nu: FloatArray) -> tuple[FloatArray, int]:
+    """Return an orthogonal matrix, its first rows spanning what reactions change, and their number."""
+    _, sizes, turn = np.linalg.svd(nu)
+    rank = int((sizes > 1e-10 * sizes.max(initial=0.0)).sum())
+    return turn, rank
+
+
+def follow(
+    network: Network,
+    case: int,
+    *,
+    farthest: float = _FARTHEST,
+    most_points: int = _MOST_POINTS,
+) -> Branch:
+    """Follow the branch of states of one case from a tank in which nothing reacts.
+
+    Parameters
+    ----------
+    network : Network
+    case : int
+    farthest : float
+        Logarithm of the volume, over that of the case, at which to stop.
+    most_points : int
+        Of the branch, at which to give up.
+    """
+    one: IntArray = np.array([case])
+    at = network.evaluate(network.start[one], np.zeros(1), one)
+    share = float(np.abs(at.along).max())
+    s0 = min(np.log(_FIRST_SHARE / share) if 0 < share < np.inf else -30.0, -7.0)
+    y, error = newton(network, network.start[one], np.array([s0]), one)
+    points = [np.append(y[0], s0)]
+    if not error[0] <= ACCEPTED:
+        return _branch(network, case, points, whole=False)
+    direction = np.zeros(network.size + 1)
+    direction[-1] = 1.0
+    step = 0.05
+    whole = False
+    while len(points) < most_points:
+        here = points[-1]
+        tangent = _tangent(network, here, one, direction)
+        if tangent is None:
+            break
+        found = None
+        while step >= _SMALLEST_STEP:
+            found, trials = _corrected(network, here, tangent, step, one)
+            if found is not None:
+                break
+            step *= 0.4
+        if found is None:
+            break
+        direction = tangent
+        points.append(found)
+        step = min(step * (1.6 if trials <= 3 else 1.0 if trials <= 5 else 0.7), _LARGEST_STEP)
+        if found[-1] >= farthest:
+            whole = True
+            break
+    return _branch(network, case, points, whole=whole)
+
+
+def _branch(network: Network, case: int, points: list[FloatArray], *, whole: bool) -> Branch:
+    table = np.array(points)
+    rows: IntArray = np.full(len(table), case)
+    return Branch(
+        table[:, -1] + np.log(network.balance.volume[case]),
+        network.flows(table[:, :-1], rows).T,
+        network.temperature(table[:, :-1]),
+        whole,
+    )
+
+
+def _bordered(network: Network, z: FloatArray, case: IntArray) -> tuple[_Values, FloatArray]:
+    at = network.evaluate(z[None, :-1], z[-1:], case)
+    return at, np.concatenate([at.jacobian[0], at.along[0][:, None]], axis=1)
+
+
+def _tangent(
+    network: Network, z: FloatArray, case: IntArray, direction: FloatArray
+) -> FloatArray | None:
+    """Return the direction of the branch, of length one, onward from the one before."""
+    _, wide = _bordered(network, z, case)
+    matrix = np.concatenate([wide, direction[None]])
+    right = np.zeros(network.size + 1)
+    right[-1] = 1.0
+    found = _solved(matrix[None], right[None])[0]
+    length = float(np.sqrt((found**2).sum()))
+    return found / length if length > 0 else None
+
+
+def _corrected(
+    network: Network, here: FloatArray, tangent: FloatArray, step: float, case: IntArray
+) -> tuple[FloatArray | None, int]:
+    """Return the point of the branch a step away, and the trials; None where none is reached."""
+    s = network.substances
+    z = here + step * tangent
+    there = network.possible[case[0]]
+    z[:s] = np.maximum(z[:s], _FLOOR * here[:s]) * there
+    for trial in range(1, 9):
+        at, wide = _bordered(network, z, case)
+        off = float(tangent @ (z - here)) - step
+        if float(at.error[0]) <= ACCEPTED and abs(off) <= 1e-6 * max(step, 1e-3):
+            moved = z - here
+            along = float(moved @ tangent)
+            # A point that lies far aside belongs to another part of the branch.
+            if along > 0.7 * float(np.sqrt((moved**2).sum())):
+                return z, trial
+            return None, trial
+        matrix = np.concatenate([wide, tangent[None]])
+        right = np.append(at.residual[0], off)
+        change = _solved(matrix[None], -right[None])[0]
+        new = z + change
+        new[:s] = np.maximum(new[:s], _FLOOR * z[:s]) * there
+        if not np.isfinite(new).all() or float(np.abs(change[:-1]).max()) > 2.0:
+            return None, trial
+        z = new
+    return None, 9
+
+
+def crossings(
+    network: Network,
+    case: int,
+    branch: Branch,
+    quantity: Callable[[FloatArray, FloatArray], FloatArray],
+    target: float,
+) -> FloatArray | None:
+    """Return where a quantity passes a target along a branch, refined; None where it does not.
+
+    Parameters
+    ----------
+    network : Network
+    case : int
+    branch : Branch
+    quantity : callable
+        Of ln(volume over that of the case), shape (m,), and scaled states, shape (m, n),
+        to shape (m,).
+    target : float
+
+    Returns
+    -------
+    ndarray, shape (k, n + 1)
+        Scaled states, and last the logarithm of the volume over that of the case.
+    """
+    one: IntArray = np.array([case])
+    ln_v = branch.ln_volume - np.log(network.balance.volume[case])
+    columns = [branch.flows / network.fed[case]]
+    if branch.temperature is not None:
+        columns.append(branch.temperature[:, None] / _KELVINS)
+    states = np.concatenate([*columns, ln_v[:, None]], axis=1)
+    values = quantity(ln_v, states[:, :-1]) - target
+    found: list[FloatArray] = []
+    for i in np.flatnonzero((values[1:] == 0) | (values[1:] * values[:-1] < 0)).tolist():
+        point = _between(network, states[i], states[i + 1], values[i], one, quantity, target)
+        if point is not None:
+            found.append(point)
+    return np.array(found) if found else None
+
+
+def _between(
+    network: Network,
+    before: FloatArray,
+    after: FloatArray,
+    first: float,
+    case: IntArray,
+    quantity: Callable[[FloatArray, FloatArray], FloatArray],
+    target: float,
+) -> FloatArray | None:
+    """Halve and interpolate the way between two points, each trial brought back to the branch."""
+    chord = after - before
+    length = float(np.sqrt((chord**2).sum()))
+    if length == 0:
+        return before
+    tangent = chord / length
+    low, high, value_low = 0.0, length, first
+    value_high = float(quantity(after[-1:], after[None, :-1])[0]) - target
+    best: FloatArray | None = None
+    for k in range(60):
+        share = value_low / (value_low - value_high) if value_low != value_high else 0.5
+        if k % 3 == 2 or not 0.0 < share < 1.0:
+            share = 0.5
+        at = low + share * (high - low)
+        point, _ = _corrected(network, before, tangent, at, case) if at > 0 else (before, 0)
+        if point is None:
+            return best
+        best = point
+        value = float(quantity(point[-1:], point[None, :-1])[0]) - target
+        if value == 0 or high - low <= 4e-15 * length:
+            break
+        if (value > 0) == (value_low > 0):
+            low, value_low = at, value
+        else:
+            high, value_high = at, value
+    return best
