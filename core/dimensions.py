@@ -20,6 +20,7 @@ DIMENSIONS: dict[str, Exponents] = {
     "concentration": (0, -3, 0, 0, 1),
     "mass_concentration": (1, -3, 0, 0, 0),
     "mass_per_amount": (1, 0, 0, 0, -1),
+    "diffusivity": (0, 2, -1, 0, 0),
     "temperature": (0, 0, 0, 1, 0),
     "temperature_difference": (0, 0, 0, 1, 0),
     "pressure": (1, -1, -2, 0, 0),
@@ -32,7 +33,13 @@ DIMENSIONS: dict[str, Exponents] = {
     "power": (1, 2, -3, 0, 0),
     "molar_energy": (1, 2, -2, 0, -1),
     "molar_heat_capacity": (1, 2, -2, -1, -1),
+    "length": (0, 1, 0, 0, 0),
+    "area": (0, 2, 0, 0, 0),
+    "viscosity": (1, -1, -1, 0, 0),
+    "heat_transfer_per_volume": (1, -1, -3, -1, 0),
+    "heat_capacity_flow": (1, 2, -3, -1, 0),
 }
 """``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity;
 ``molar_heat_capacity`` an entropy too. The reaction rates are per volume and per mass of catalyst;
-what a reactor makes by its size is one of them."""
+what a reactor makes by its size is one of them. ``heat_transfer_per_volume`` is an overall
+coefficient times the area in a volume of reactor, ``heat_capacity_flow`` that of a utility."""

@@ -35,6 +35,7 @@ DEFAULT_UNITS: dict[str, str] = {
     "concentration": "kmol/m3",
     "mass_concentration": "kg/m3",
     "mass_per_amount": "g/mol",
+    "diffusivity": "m2/s",
     "temperature": "K",
     "temperature_difference": "K",
     "pressure": "bar",
@@ -47,6 +48,11 @@ DEFAULT_UNITS: dict[str, str] = {
     "power": "kW",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
+    "length": "m",
+    "area": "m2",
+    "viscosity": "mPa s",
+    "heat_transfer_per_volume": "kW/(m3 K)",
+    "heat_capacity_flow": "kW/K",
 }
 """The unit of each dimension where neither the request nor its fields name one."""
 

@@ -364,6 +364,7 @@ class VolumeResult(OpenSchema):
 
     volume = number("Of the reactor, all tanks together; of a batch, at the start.")
     time = number("Of a batch.")
+    catalyst_mass = number("In place of a volume, where the rate is per catalyst-mass.")
     conversion = number(required=True)
     largest_conversion = number(
         "Of the key on this way: at equilibrium, or where a substance is used up.", required=True
@@ -430,20 +431,26 @@ def write(
     size = float(sizing.size)
     feed_volume = feed.volumetric_flow
     assert feed_volume is not None
-    result["volume"] = edge.number(float(feed_volume) if batch else size, "volume")
+    by_mass = problem.rate.per == "catalyst-mass"
+    if batch or not by_mass:
+        result["volume"] = edge.number(float(feed_volume) if batch else size, "volume")
     if batch:
         result["time"] = edge.number(size, "time")
+    elif by_mass:
+        result["catalyst_mass"] = edge.number(size, "mass")
     result["conversion"] = edge.number(float(sizing.conversion), "dimensionless")
     result["largest_conversion"] = edge.number(float(limit.conversion), "dimensionless")
     result["bounded_by"] = "equilibrium" if at_equilibrium else "limiting-reactant"
     if not at_equilibrium:
         result["limiting"] = names[int(limit.substance)]
-    if sizing.space_time is not None and sizing.mean_residence_time is not None:
+    if sizing.space_time is not None:
         result["space_time"] = edge.number(float(sizing.space_time), "time")
         if size > 0:
             result["space_velocities"] = _space_velocities(feed, size, edge)
+    if sizing.mean_residence_time is not None:
         result["mean_residence_time"] = edge.number(float(sizing.mean_residence_time), "time")
-    result["outlet_rate"] = edge.number(float(sizing.outlet_rate), "reaction_rate")
+    rate_dimension = "reaction_rate_per_mass" if by_mass else "reaction_rate"
+    result["outlet_rate"] = edge.number(float(sizing.outlet_rate), rate_dimension)
     result["inlet"] = write_known_stream(edge, names, feed)
     result["outlet"] = write_known_stream(edge, names, sizing.outlet)
     if question.constant is not None:
@@ -457,7 +464,7 @@ def write(
             edge.number(x, "dimensionless") for x in sizing.tanks.conversion.tolist()
         ]
     if sizing.profile is not None:
-        result["profile"] = _profile(sizing, "time" if batch else "volume", edge).document()
+        result["profile"] = _profile(sizing, rate_dimension, edge).document()
     of_k = _EquilibriumNotes.of(question)
     used = {p.substance: p for p in (*energetics.properties, *of_k.properties)}
     notes = (
@@ -548,17 +555,17 @@ def _space_velocities(feed: Stream, volume: float, edge: EdgeMap) -> Json:
     return {"liquid": edge.number(float(flow) / volume, "frequency")}
 
 
-def _profile(sizing: Sizing, dimension: str, edge: EdgeMap) -> Table:
-    profile = sizing.profile
+def _profile(sizing: Sizing, of_rate: str, edge: EdgeMap) -> Table:
+    profile, name = sizing.profile, sizing.dimension
     assert profile is not None
-    size, rate = edge.scales[dimension], edge.scales["reaction_rate"]
+    size, rate = edge.scales["mass" if name == "catalyst_mass" else name], edge.scales[of_rate]
     return Table(
         {
-            dimension: (profile.size / size.factor).tolist(),
+            name: (profile.size / size.factor).tolist(),
             "conversion": profile.conversion.tolist(),
             "rate": (profile.rate / rate.factor).tolist(),
         },
-        {dimension: size.unit, "conversion": "1", "rate": rate.unit},
+        {name: size.unit, "conversion": "1", "rate": rate.unit},
     )
 
 
