@@ -121,6 +121,15 @@ NOTES: dict[str, Entry] = {
         "An equilibrium constant was used outside the temperatures between which its correlation"
         " is stated to hold.",
     ),
+    "pellet-isothermal": Entry(
+        "Pellet of one temperature",
+        "The effectiveness of a pellet was found for the temperature of the fluid throughout it,"
+        " and the fluid's composition at its surface.",
+    ),
+    "adsorption-takes-up-heat": Entry(
+        "Adsorption that takes up heat",
+        "The enthalpy of an adsorption is above zero, which is rare. Check the sign.",
+    ),
     "affinity-exponent-one": Entry(
         "Affinity exponent 1",
         "The net rate was taken as forward (1 - Q/K) of the equation as written.",

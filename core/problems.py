@@ -560,6 +560,22 @@ _REACTORS: dict[str, Entry] = {
         "The unit does not fit the orders and the driving quantity of the law. The detail says"
         " the unit expected; check orders and unit.",
     ),
+    "adsorption-constant-unit": Entry(
+        "Unit of a constant of adsorption",
+        "A term of a denominator is a number, so that the unit of its constant follows from its"
+        " orders and the driving quantity. The detail says the unit expected.",
+    ),
+    "effectiveness-needs-first-order": Entry(
+        "Effectiveness by a Thiele modulus needs a first order",
+        "A pellet's effectiveness follows from its modulus, independent of concentration, where the"
+        " rate is of first order in one reactant, irreversible or reversible. State it as a number"
+        " for any other rate.",
+    ),
+    "rate-vanishes": Entry(
+        "The rate vanishes on the way",
+        "Before the target the rate is nothing beside that at the feed, mostly because an"
+        " endothermic reaction cools itself. Ask for less, or feed it hotter.",
+    ),
     "rate-not-finite": Entry(
         "Rate without a finite value",
         "Somewhere on the way the rate law has no finite value. Check orders, constants and their"
