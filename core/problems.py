@@ -443,8 +443,9 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
     "compute-budget": Entry(
         "Compute budget used up",
         "The question takes more work than one request may: an account with very many unknowns or"
-        " readings, or an equilibrium of many reactions at many points. Leave out what does not"
-        " matter, take streams together, ask for fewer points, or split it.",
+        " readings, an equilibrium of many reactions at many points, or a reactor along which rates"
+        " are needed too often. Leave out what does not matter, take streams together, ask for"
+        " fewer points, or split it.",
     ),
     "under-determined": Entry(
         "Readings do not settle the account",
@@ -653,6 +654,12 @@ _REACTORS: dict[str, Entry] = {
         "Integral did not converge",
         "The size is an integral that could not be computed to its tolerance. Check the rate law"
         " for values beyond sense.",
+    ),
+    "march-not-finished": Entry(
+        "Equations not followed to the end",
+        "The equations along a reactor could be followed only so far: there a rate or a state is"
+        " not finite, or changes without bound. Check rate laws, orders, floors and sizes, or ask"
+        " for less.",
     ),
     "not-a-gas": Entry(
         "Not a gas by the equation of state",

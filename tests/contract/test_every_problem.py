@@ -814,6 +814,7 @@ ELSEWHERE = {
     "root-not-bracketed": "tests/core/numerics/test_roots.py",
     "root-not-converged": "tests/core/numerics/test_roots.py",
     "integral-not-converged": "tests/core/numerics/test_quadrature.py",
+    "march-not-finished": "tests/core/numerics/test_integration.py",
 }
 """Codes that no JSON request to a calculation brings about, and the test that does."""
 
