@@ -199,6 +199,16 @@ NOTES: dict[str, Entry] = {
         " starting can take it from one to another. Runaway is not assessed; follow local codes and"
         " licensed practice.",
     ),
+    "reactant-exhausted": Entry(
+        "Reactant used up",
+        "The rate does not fade with a reactant, which is used up inside the reactor; beyond there"
+        " nothing reacts.",
+    ),
+    "enthalpy-of-ideal-gas": Entry(
+        "Enthalpies of the ideal gas",
+        "The gas model gives volumes and fugacities; what a real gas's enthalpy differs by is left"
+        " out of the energy balance.",
+    ),
     "search-not-proven": Entry(
         "Search that proves nothing",
         "The steady states are those that a search found; there may be others.",

@@ -526,6 +526,38 @@ _REACTORS: dict[str, Entry] = {
         " 'volume' or 'catalyst_mass', of a batch the 'time'; ask /v1/volume for the size that a"
         " target needs.",
     ),
+    "size-basis-needed": Entry(
+        "Basis of the size needed",
+        "The rate counts by one thing (fluid, bed, catalyst) and the reactor by another, and what is"
+        " in between is not stated: the bulk density of the catalyst, or the void fraction of the"
+        " bed. State it, or the size on the rate's own basis.",
+    ),
+    "pressure-exhausted": Entry(
+        "Pressure exhausted",
+        "The pressure drop uses up the inlet pressure before the end of the bed. Raise the pressure,"
+        " lower the flow, or state a wider bed or larger particles.",
+    ),
+    "rate-does-not-fade": Entry(
+        "A rate that does not fade",
+        "A reactant is used up inside the reactor, and the rate of a reaction that consumes it does"
+        " not hang on it: beyond there the rate law says nothing. Give the rate an order above zero"
+        " in it.",
+    ),
+    "no-solution": Entry(
+        "No solution",
+        "No temperature at which a utility that flows against the stream could leave makes it enter"
+        " at its own, or none that can be resolved. Check its flow, temperature and coefficient.",
+    ),
+    "recycle-not-found": Entry(
+        "Recycle not found",
+        "No outlet was found that, with its part returned to the inlet, makes itself again. State a"
+        " smaller recycle ratio or size, or a stirred tank.",
+    ),
+    "heat-capacity-of-liquid-unknown": Entry(
+        "Heat capacity of the liquid unknown",
+        "The liquid is stated by concentrations, beside which a solvent may be in it that is heated"
+        " too. State the flows of everything in it, or its density.",
+    ),
     "train-sizes": Entry(
         "Sizes of a train",
         "Where a size is asked for, exactly one reactor of a train is without one; else every one"

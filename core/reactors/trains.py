@@ -78,7 +78,7 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
     Raises
     ------
     Refused
-        ``size-not-stated``: not exactly one is without. As each stage.
+        ``train-sizes``: not exactly one is without. As each stage.
     """
     train = _train(problem)
     open_ = [
@@ -88,7 +88,7 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
     ]
     if len(open_) != 1:
         raise refuse(
-            "size-not-stated",
+            "train-sizes",
             ("reactor", "stages"),
             "{count} reactors of the train are without a size; the size of exactly one is found:"
             " leave it out there, and state it of the others",
