@@ -354,7 +354,10 @@ class _Run:
                 late = self.onward * (before - begin) > 0
                 for i in np.flatnonzero(late):
                     states[i] = _walked(
-                        replace(self.case, events=()), np.array([begin, before[i]]), y[row], side
+                        replace(self.case, events=()),
+                        np.array([begin, before[i]]),
+                        y[row],
+                        side[:0],
                     ).y_end
                 return March(
                     before, states, walk.end, walk.y_end, tuple(crossings), True, self.evaluations
