@@ -234,9 +234,7 @@ def check_gas(problem: ReactorProblem, seen: Seen) -> None:
     gas = problem.gas
     if gas is None or seen.temperature is None or seen.pressure is None:
         return
-    z = gas.known_compressibility(
-        seen.temperature, seen.pressure, np.maximum(seen.flows, 0.0), ("reactor",)
-    )
+    z = gas.known_compressibility(seen.temperature, seen.pressure, seen.flows, ("reactor",))
     off = np.abs(z / seen.compressibility - 1.0)
     if off.max() > _SAME_Z:
         at = int(off.argmax())
@@ -310,7 +308,7 @@ def profile_of(problem: ReactorProblem, course: Course, seen: Seen, points: int)
         length=length,
         time=seen.x[at] if basis == "time" else None,
         extents=some(seen.extents),
-        flows=np.maximum(seen.flows[at], 0.0),
+        flows=seen.flows[at],
         temperature=some(seen.temperature),
         pressure=some(seen.pressure),
         utility_temperature=some(seen.utility),
