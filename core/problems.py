@@ -682,6 +682,12 @@ _REACTORS: dict[str, Entry] = {
         "No reactor of this kind reaches the target: equilibrium or a substance that runs out"
         " bounds it, as the detail says. Ask for less, or change the feed or conditions.",
     ),
+    "steady-state-not-found": Entry(
+        "No steady state was found",
+        "A stirred tank with several reactions has no state of rest that a search finds. A rate"
+        " that does not vanish with what it consumes can have none: check orders, constants and"
+        " their units.",
+    ),
     "integral-not-converged": Entry(
         "Integral did not converge",
         "The size is an integral that could not be computed to its tolerance. Check the rate law"

@@ -348,14 +348,13 @@ def _sampled(problem: Enclosed, runs: _Boxes) -> list[_Root]:
     found: list[_Root] = []
     for i in np.flatnonzero(runs.found == _OPEN).tolist():
         k = int(runs.case[i])
+
+        def value(y: FloatArray, rows: IntArray, k: int = k) -> FloatArray:
+            return problem.value(y, np.full(len(rows), k))
+
         x = np.linspace(float(runs.lower[i]), float(runs.upper[i]), _SAMPLES)
-        case = np.full(_SAMPLES, k)
-        signs = np.sign(problem.value(x, case))
+        signs = np.sign(value(x, np.arange(_SAMPLES)))
         for j in np.flatnonzero(signs[1:] * signs[:-1] < 0).tolist():
-            root = find_root(
-                lambda y, rows, k=k: problem.value(y, np.full(len(rows), k)),
-                x[j : j + 1],
-                x[j + 1 : j + 2],
-            )
+            root = find_root(value, x[j : j + 1], x[j + 1 : j + 2])
             found.append((float(root[0]), k, int(signs[j + 1]), False))
     return found

@@ -180,7 +180,8 @@ class Enclosure:
         return shifted
 
     def __sub__(self, other: Any) -> Enclosure:
-        return self + (-other)
+        less: Enclosure = self + (-other)
+        return less
 
     def __rsub__(self, other: Any) -> Enclosure:
         return (-self)._shifted(other)
@@ -343,8 +344,8 @@ def enclosed(a: Any) -> Enclosure:
     return a if isinstance(a, Enclosure) else Enclosure(a, a, (0.0, 0.0), (0.0, 0.0))
 
 
-def _below(a: Any, b: Any, then: Any, otherwise: Any) -> Enclosure:
-    a, b, then, otherwise = (enclosed(v) for v in (a, b, then, otherwise))
+def _below(one: Any, two: Any, yes: Any, no: Any) -> Enclosure:
+    a, b, then, otherwise = enclosed(one), enclosed(two), enclosed(yes), enclosed(no)
     certain, never = np.asarray(a.upper < b.lower), np.asarray(a.lower >= b.upper)
     if certain.all():
         return then

@@ -42,7 +42,9 @@ _PSEUDO_STEPS = 150
 _RESTARTS = 6
 _SHORTENED = (1.0, 0.5, 0.2, 0.05, 0.01)
 _MOST_POINTS = 3_000
-_FIRST_SHARE = 1e-4  # of the feed that reacts where the branch begins
+_FIRST = -7.0  # logarithm of the volume, over that of the case, at which the branch begins at most
+_FIRST_SHARE = 1e-4  # of the feed that reacts there
+_FIRST_FEEDBACK = 0.05  # of what flows, that reactions started by it give back there
 _FARTHEST = float(np.log(1e3))  # beyond the volume asked for
 _LARGEST_STEP, _SMALLEST_STEP = 0.4, 1e-9
 _SAME = 1e-6  # of two states, that are one
@@ -148,6 +150,25 @@ class Network:
     def flows(self, y: FloatArray, case: IntArray) -> FloatArray:
         """Return flows, shape (S, m), mol/s."""
         return (y[:, : self.substances] * self.fed[case, None]).T
+
+    def scaled(self, flows: FloatArray, temperature: FloatArray | None) -> FloatArray:
+        """Return states of the first case from flows, shape (S, m), and temperatures, (m,)."""
+        y: FloatArray = flows.T / self.fed[0]
+        if temperature is None:
+            return y
+        return np.concatenate([y, temperature[:, None] / _KELVINS], axis=1)
+
+    def extents(self, y: FloatArray, ln_v: FloatArray, case: IntArray) -> FloatArray:
+        """Return the extents, shape (R, m), mol/s: of independent reactions by what flows."""
+        balance, m = self.balance, len(case)
+        flows = self.flows(y, case)
+        if np.linalg.matrix_rank(balance.nu) == self.reactions:
+            changes = flows - balance.feed[case].T
+            return np.asarray(np.linalg.lstsq(balance.nu.T, changes, rcond=None)[0], dtype=float)
+        t = self.temperature(y)
+        state = flows if t is None else np.concatenate([flows, t[None]])
+        rates = balance.rates.on_arrays(case)(np.zeros(m), state)
+        return rows_of(rates, m) * balance.volume[case] * np.exp(ln_v)
 
     def temperature(self, y: FloatArray) -> FloatArray | None:
         """Return temperatures, shape (m,), K."""
@@ -261,6 +282,12 @@ class _Values:
     along: FloatArray
 
     @property
+    def feedback(self) -> FloatArray:
+        """What the states do to the balances beyond washing themselves out."""
+        found: FloatArray = self.jacobian + np.eye(self.jacobian.shape[1])
+        return found
+
+    @property
     def error(self) -> FloatArray:
         with np.errstate(all="ignore"):
             each = np.where(self.residual == 0, 0.0, np.abs(self.residual) / self.scale)
@@ -319,7 +346,9 @@ def pseudo_time(
     """Return states after steps in pseudo-time, each longer as the imbalance falls."""
     y = y.copy()
     n = network.size
-    length = np.full(len(case), 1e-2)
+    feedback = network.evaluate(y, ln_v, case).feedback
+    largest = np.abs(np.nan_to_num(feedback, nan=1e9, posinf=1e9)).max(axis=(1, 2))
+    length = np.clip(0.5 / np.maximum(largest, 1e-300), 1e-9, 1e-2)
     errors, before = np.full(len(case), np.inf), np.full(len(case), np.nan)
     rows: IntArray = np.arange(len(case))
     for _ in range(steps):
@@ -333,7 +362,7 @@ def pseudo_time(
         size = np.sqrt((residual**2).sum(axis=1))
         with np.errstate(all="ignore"):
             ratio = np.clip(np.nan_to_num(before[rows] / size, nan=1.5, posinf=3.0), 0.3, 3.0)
-        length[rows] = np.clip(length[rows] * ratio, 1e-8, 1e12)
+        length[rows] = np.clip(length[rows] * ratio, 1e-9, 1e12)
         before[rows] = size
         inverse = np.eye(n) / length[rows, None, None]
         step = _solved(inverse - at.jacobian[going], residual)
@@ -386,10 +415,12 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
         for k in np.flatnonzero(errors > ACCEPTED).tolist():
             one = follow(network, k, farthest=0.0)
             states = crossings(network, k, one, lambda ln_v, _y: ln_v, 0.0)
-            if states is not None and len(states):
-                y[k], errors[k], stage[k] = states[0, :-1], 0.0, 4
-    y, errors = _polished(network, y, errors)
+            if len(states):
+                one_case: IntArray = np.array([k])
+                y[k], stage[k] = states[0, :-1], 4
+                errors[k] = network.evaluate(y[[k]], np.zeros(1), one_case).error[0]
     rows = np.arange(n)
+    y, errors = _polished(network, y, errors, rows)
     return Found(network.flows(y, rows), network.temperature(y), errors <= ACCEPTED, errors, stage)
 
 
@@ -412,7 +443,29 @@ def _other_starts(network: Network, rows: IntArray, rng: np.random.Generator) ->
     return network.stepped(y, np.zeros_like(y), rows)
 
 
-def _polished(network: Network, y: FloatArray, errors: FloatArray) -> tuple[FloatArray, FloatArray]:
+def distinct(network: Network, states: FloatArray, case: int) -> FloatArray:
+    """Return the states of one case that differ, polished, shape (k, n)."""
+    rows: IntArray = np.full(len(states), case)
+    errors = network.evaluate(states, np.zeros(len(states)), rows).error
+    y, errors = _polished(network, states, errors, rows)
+    kept: list[FloatArray] = []
+    for one in y[errors <= ACCEPTED]:
+        if all(float(np.abs(one - other).max()) > _SAME for other in kept):
+            kept.append(one)
+    return np.array(kept).reshape(len(kept), network.size)
+
+
+def more_states(network: Network, case: int, starts: int, seed: int = 0) -> FloatArray:
+    """Return the states that Newton's method comes to from seeded compositions, shape (k, n)."""
+    rows: IntArray = np.full(starts, case)
+    y = _other_starts(network, rows, np.random.default_rng([seed, starts]))
+    found, errors = newton(network, y, np.zeros(starts), rows)
+    return found[errors <= ACCEPTED]
+
+
+def _polished(
+    network: Network, y: FloatArray, errors: FloatArray, case: IntArray
+) -> tuple[FloatArray, FloatArray]:
     """Return states after a last Newton step in which elements are balanced to rounding.
 
     The balances of as many substances as there are independent reactions stay as they
@@ -421,14 +474,14 @@ def _polished(network: Network, y: FloatArray, errors: FloatArray) -> tuple[Floa
     rows: IntArray = np.flatnonzero(errors <= ACCEPTED)
     if not rows.size:
         return y, errors
-    s = network.substances
+    y, errors, own, s = y.copy(), errors.copy(), case[rows], network.substances
     turn, kept = _rotation(network.balance.nu)
     best, error = y[rows].copy(), errors[rows].copy()
     current = best.copy()
     zeros = np.zeros(len(rows))
-    entering = network.balance.feed[rows] / network.fed[rows, None]
+    entering = network.balance.feed[own] / network.fed[own, None]
     for _ in range(3):
-        at = network.evaluate(current, zeros, rows)
+        at = network.evaluate(current, zeros, own)
         residual, jacobian = at.residual.copy(), at.jacobian.copy()
         # Rows without a rate: invariants of the reactions.
         residual[:, kept:s] = (entering - current[:, :s]) @ turn[kept:].T
@@ -437,8 +490,8 @@ def _polished(network: Network, y: FloatArray, errors: FloatArray) -> tuple[Floa
         residual[:, :kept] = at.residual[:, :s] @ turn[:kept].T
         jacobian[:, :kept] = np.einsum("ki,mij->mkj", turn[:kept], at.jacobian[:, :s])
         step = _solved(jacobian, -residual)
-        current = network.stepped(current, step, rows)
-        now = network.evaluate(current, zeros, rows).error
+        current = network.stepped(current, step, own)
+        now = network.evaluate(current, zeros, own).error
         good = now <= ACCEPTED
         best[good], error[good] = current[good], now[good]
     y[rows], errors[rows] = best, error
@@ -446,7 +499,7 @@ def _polished(network: Network, y: FloatArray, errors: FloatArray) -> tuple[Floa
 
 
 def _rotation(nu: FloatArray) -> tuple[FloatArray, int]:
-    """Return an orthogonal matrix, its first rows spanning what reactions change, and their number."""
+    """Return an orthogonal matrix, and how many of its first rows span what reactions change."""
     _, sizes, turn = np.linalg.svd(nu)
     rank = int((sizes > 1e-10 * sizes.max(initial=0.0)).sum())
     return turn, rank
@@ -472,8 +525,7 @@ def follow(
     """
     one: IntArray = np.array([case])
     at = network.evaluate(network.start[one], np.zeros(1), one)
-    share = float(np.abs(at.along).max())
-    s0 = min(np.log(_FIRST_SHARE / share) if 0 < share < np.inf else -30.0, -7.0)
+    s0 = min(_FIRST, _ln_over(_FIRST_SHARE, at.along), _ln_over(_FIRST_FEEDBACK, at.feedback))
     y, error = newton(network, network.start[one], np.array([s0]), one)
     points = [np.append(y[0], s0)]
     if not error[0] <= ACCEPTED:
@@ -502,6 +554,12 @@ def follow(
             whole = True
             break
     return _branch(network, case, points, whole=whole)
+
+
+def _ln_over(share: float, values: FloatArray) -> float:
+    """Return the logarithm by which a volume must change for these to come down to a share."""
+    largest = float(np.abs(values).max())
+    return float(np.log(share / largest)) if 0 < largest < np.inf else 0.0
 
 
 def _branch(network: Network, case: int, points: list[FloatArray], *, whole: bool) -> Branch:
@@ -568,8 +626,8 @@ def crossings(
     branch: Branch,
     quantity: Callable[[FloatArray, FloatArray], FloatArray],
     target: float,
-) -> FloatArray | None:
-    """Return where a quantity passes a target along a branch, refined; None where it does not.
+) -> FloatArray:
+    """Return where a quantity passes a target along a branch, refined.
 
     Parameters
     ----------
@@ -598,7 +656,7 @@ def crossings(
         point = _between(network, states[i], states[i + 1], values[i], one, quantity, target)
         if point is not None:
             found.append(point)
-    return np.array(found) if found else None
+    return np.array(found).reshape(len(found), network.size + 1)
 
 
 def _between(

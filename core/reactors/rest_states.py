@@ -204,7 +204,8 @@ class _OneReaction:
         gone, left = expit(u), expit(-u)
         change = self.change[case].T
         rising = self.start[case].T + change * gone
-        return np.where(change < 0, self.end[case].T - change * left, rising)
+        found: FloatArray = np.where(change < 0, self.end[case].T - change * left, rising)
+        return found
 
     def temperature(
         self, u: FloatArray, case: IntArray, guess: FloatArray | None = None

@@ -8,6 +8,7 @@ in the tank alone; walls and catalyst store no heat.
 
 from __future__ import annotations
 
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import replace
 
 import numpy as np
@@ -17,6 +18,14 @@ from core.errors import Amount, Note, refuse
 from core.numerics.all_roots import MOST_BOXES
 from core.numerics.straight_line import Number
 from core.reactors.balances import Balances, Basis
+from core.reactors.network_states import (
+    Network,
+    crossings,
+    distinct,
+    follow,
+    more_states,
+    solve_network,
+)
 from core.reactors.problem import (
     Adiabatic,
     Exchange,
@@ -36,6 +45,8 @@ CURVE_POINTS = 121
 _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
+_MORE_STARTS = 12
+"""From which states beside the branch are looked for."""
 
 
 def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalance:
@@ -118,7 +129,7 @@ def steady_states(
     feed : Stream, optional
         What enters, where it is not the problem's own feed.
     curves : bool
-        Whether to give what the reaction gives off and what leaves over temperature.
+        Whether to give what one reaction gives off and what leaves over temperature.
 
     Returns
     -------
@@ -131,33 +142,116 @@ def steady_states(
     ------
     Refused
         As :func:`tank_balance`; ``outside-correlation`` where the only states lie beyond
-        the temperatures that the heat capacities reach; ``no-steady-state-found``.
+        the temperatures that the heat capacities reach; ``steady-state-not-found``.
     """
     feed = problem.feed if feed is None else feed
     balance = tank_balance(problem, feed, size)
     _check_unreacted(balance)
-    assert len(balance.nu) == 1
+    if len(balance.nu) > 1:
+        states = _searched(problem, feed, balance)
+        return SteadyStates(states, complete=False, described=_described(states)), ()
     real = problem.gas is not None and feed.phase == "gas"
-    most = _MOST_BOXES_REAL_GAS if real else MOST_BOXES
-    found = rest_states(balance, most_boxes=most)
+    found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
     if not len(found.case):
         raise _beyond(balance)
-    states = [_state(problem, feed, found, k) for k in range(len(found.case))]
-    order = _order(found)
+    states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))
     complete = bool(found.complete[0]) and not bool(found.cut[0])
-    described = _described([states[k] for k in order])
     heat_curves = None
     if curves and found.temperature is not None:
         heat_curves = curves_of(balance, found.temperature)
-    answer = SteadyStates(tuple(states[k] for k in order), complete, described, heat_curves)
-    return answer, tuple(_notes(balance, answer, found))
+    answer = SteadyStates(states, complete, _described(states), heat_curves)
+    return answer, tuple(_notes(balance, found))
 
 
-def _order(found: RestStates) -> list[int]:
-    if found.temperature is None:
-        return list(range(len(found.case)))
-    order: list[int] = np.argsort(found.temperature, kind="stable").tolist()
-    return order
+def _searched(
+    problem: ReactorProblem, feed: Stream, balance: TankBalance
+) -> tuple[SteadyState, ...]:
+    """Return the states of a network that are found."""
+    network = Network(balance)
+    one = solve_network(balance, branch=False)
+    branch = follow(network, 0)
+    found = [crossings(network, 0, branch, lambda ln_v, _y: ln_v, 0.0)[:, :-1]]
+    if one.accepted[0]:
+        found.append(network.scaled(one.flows, one.temperature))
+    found.append(more_states(network, 0, _MORE_STARTS))
+    states = distinct(network, np.concatenate(found), 0)
+    if not len(states):
+        raise _not_found()
+    return _states_of(problem, feed, network, states, np.zeros(len(states)))
+
+
+def _states_of(
+    problem: ReactorProblem, feed: Stream, network: Network, y: FloatArray, ln_v: FloatArray
+) -> tuple[SteadyState, ...]:
+    """Return scaled states of a network of one case as they are told, in order."""
+    balance = network.balance
+    case: IntArray = np.zeros(len(y), dtype=np.intp)
+    flows, t = network.flows(y, case), network.temperature(y)
+    volume = balance.volume[case] * np.exp(ln_v)
+    growth, off = balance.departures(flows, t, volume, case).growth()
+    extents = network.extents(y, ln_v, case)
+    key, states = problem.key, []
+    for k in range(len(y)):
+        left, fed = float(flows[key, k]), float(feed.flows[key])
+        known = abs(growth[k]) > off[k]
+        states.append(
+            SteadyState(
+                outlet=outlet_of(problem, feed, flows[:, k], None if t is None else float(t[k])),
+                conversion=(fed - left) / fed,
+                extents=extents[:, k],
+                stable=bool(growth[k] < 0) if known else None,
+            )
+        )
+    return _in_order(states)
+
+
+def sizes_for(
+    problem: ReactorProblem,
+    feed: Stream,
+    near: Size,
+    quantity: Callable[[FloatArray, FloatArray | None, FloatArray], FloatArray],
+    target: float,
+) -> tuple[tuple[Size, SteadyState], ...]:
+    """Return all sizes of a tank at which a quantity meets a target, on one branch of states.
+
+    It is the branch that begins with the feed in a tank so small that nothing reacts, and
+    is followed around its turning points to a thousand times ``near``.
+
+    Parameters
+    ----------
+    problem : ReactorProblem
+    feed : Stream
+    near : Size
+        About where to look; the branch is followed to a thousand times of it.
+    quantity : callable
+        Of flows, shape (m, S), temperatures, shape (m,), or None, and sizes, shape (m,).
+    target : float
+
+    Returns
+    -------
+    tuple of (Size, SteadyState)
+        In the order of the branch.
+    """
+    balance = tank_balance(problem, feed, near)
+    _check_unreacted(balance)
+    network = Network(balance)
+    case: IntArray = np.zeros(1, dtype=np.intp)
+
+    def of_scaled(ln_v: FloatArray, y: FloatArray) -> FloatArray:
+        rows = np.broadcast_to(case, len(y))
+        return quantity(network.flows(y, rows).T, network.temperature(y), near.value * np.exp(ln_v))
+
+    points = crossings(network, 0, follow(network, 0), of_scaled, target)
+    found = []
+    for point in points:
+        (state,) = _states_of(problem, feed, network, point[None, :-1], point[-1:])
+        found.append((replace(near, value=float(near.value * np.exp(point[-1]))), state))
+    return tuple(found)
+
+
+def _in_order(states: Iterable[SteadyState]) -> tuple[SteadyState, ...]:
+    """Return states in order of temperature, at one temperature of conversion."""
+    return tuple(sorted(states, key=lambda s: (s.outlet.temperature or 0.0, s.conversion)))
 
 
 def _state(problem: ReactorProblem, feed: Stream, found: RestStates, k: int) -> SteadyState:
@@ -194,7 +288,7 @@ def outlet_of(
     return replace(out, compressibility=float(z))
 
 
-def _described(states: list[SteadyState]) -> int:
+def _described(states: Sequence[SteadyState]) -> int:
     """Return which state a tank in operation is taken to stand in."""
     ranked = sorted(
         range(len(states)), key=lambda k: (states[k].stable is True, states[k].conversion)
@@ -290,33 +384,29 @@ def _repeated(balance: TankBalance, n: int) -> TankBalance:
     )
 
 
-def _notes(balance: TankBalance, answer: SteadyStates, found: RestStates) -> list[Note]:
-    notes = []
-    if len(answer.states) > 1:
-        stable = sum(state.stable is True for state in answer.states)
-        notes.append(
-            Note(
-                "several-steady-states",
-                "the tank has {count} steady states, {stable} of them stable: which one it stands"
-                " in hangs on how it was started, and a disturbance can take it from one to"
-                " another; the answer describes the stable one of the highest conversion",
-                severity="caution",
-                facts={"count": len(answer.states), "stable": stable},
-            )
+def _not_found() -> Exception:
+    return refuse(
+        "steady-state-not-found",
+        ("reactor",),
+        "no steady state was found in which nothing flows out below zero: a rate that does not"
+        " vanish with what it consumes (an order of zero, or below) can have none; check the"
+        " orders, the constants and their units, or ask for a smaller reactor",
+    )
+
+
+def _notes(balance: TankBalance, found: RestStates) -> list[Note]:
+    heat = balance.heat
+    if heat is None or not bool(found.cut[0]):
+        return []
+    return [
+        Note(
+            "steady-state-beyond-data",
+            "there is a further steady state outside {lowest} to {highest}, between which the"
+            " heat capacities are known; it is not given",
+            severity="caution",
+            facts={
+                "lowest": Amount(heat.coldest, "temperature"),
+                "highest": Amount(heat.hottest, "temperature"),
+            },
         )
-    if bool(found.cut[0]):
-        heat = balance.heat
-        assert heat is not None
-        notes.append(
-            Note(
-                "steady-state-beyond-data",
-                "there is a further steady state outside {lowest} to {highest}, between which the"
-                " heat capacities are known; it is not given",
-                severity="caution",
-                facts={
-                    "lowest": Amount(heat.coldest, "temperature"),
-                    "highest": Amount(heat.hottest, "temperature"),
-                },
-            )
-        )
-    return notes
+    ]

@@ -268,10 +268,11 @@ class TankBalance:
         """
         r, s = self.nu.shape
         m = len(case)
+        changes = np.asarray(self.nu.any(axis=0))
         state = flows if temperature is None else np.concatenate([flows, temperature[None]])
         values = self.slopes.on_arrays(case)(np.zeros(m), state)
         table = rows_of(values, m).reshape(r, len(values) // r, m)
-        present = np.where(self.nu.any(axis=0)[:, None], table[:, :s], 0.0)
+        present = np.where(changes[:, None], table[:, :s], 0.0)
         by_extent = np.einsum("jim,ki->mjk", present, self.nu) * volume[:, None, None]
         space_time = self.space_time[case] * volume / self.volume[case]
         if temperature is None:

@@ -813,6 +813,7 @@ ELSEWHERE = {
     "molar-mass-not-positive": "tests/core/substances/test_formula.py",
     "root-not-bracketed": "tests/core/numerics/test_roots.py",
     "root-not-converged": "tests/core/numerics/test_roots.py",
+    "steady-state-not-found": "tests/core/reactors/test_network_states.py",
     "integral-not-converged": "tests/core/numerics/test_quadrature.py",
     "march-not-finished": "tests/core/numerics/test_integration.py",
 }
