@@ -304,6 +304,8 @@ class _Room:
             side, values, absolute,
         )  # fmt: skip
         self._write(lanes, none == 0, x, None, y)
+        still = np.flatnonzero(x == end)
+        self.found.y[:, :, rows[still]] = y[:, still]
         self._end(lanes, x == end)
         for lane in np.flatnonzero(~np.isfinite(mean_square(slopes)) & (x != end)):
             self._fault(lanes, int(lane), "march-not-finished")
@@ -365,18 +367,19 @@ class _Room:
         hit = None
         if self.events:
             within = step.interpolant()
-            lanes.evaluations += np.where(good, 3 if self.explicit else 0, 0)
             hit = self._fired(lanes, step, within, h, good, x_new)
             until = x_new.copy()
             until[hit.lanes] = hit.x
         due = self._due(lanes, good, until)
+        inside = np.zeros(len(good), dtype=bool)
         while due.any():
-            exact = self._asked(lanes) == x_new
-            if within is None and not exact[due].all():
+            inside |= due & (self._asked(lanes) != x_new)
+            if within is None and inside.any():
                 within = step.interpolant()
-                lanes.evaluations += np.where(due, 3 if self.explicit else 0, 0)
             self._write(lanes, due, x_new, within, step.y, h)
             due = self._due(lanes, good, until)
+        looked_into = good if self.events else inside
+        lanes.evaluations += np.where(looked_into, 3 if self.explicit else 0, 0)
         if good.all():
             lanes.x, lanes.y, lanes.slopes = x_new, step.y, step.slopes
         else:
