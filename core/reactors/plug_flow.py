@@ -80,7 +80,7 @@ class PlugFlow:
             distance_to_limit=path.target_left.reshape(lead),
             limit=limit_of(path),
             space_time=space_time.reshape(lead) if by_volume else None,
-            mean_residence_time=residence.reshape(lead) if path.per == "fluid-volume" else None,
+            mean_residence_time=residence.reshape(lead),
             outlet=outlet_stream(problem, path, constant_volume=False),
             outlet_rate=signed(path, way.rate)[:, -1].reshape(lead),
             profile=_profile(path, way, path.key_flow[:, None] * way.by_feed_volume, points),

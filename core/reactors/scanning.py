@@ -94,9 +94,7 @@ def bracketed(
     ends = [float(np.log(x)) if logarithmic else x for x, _ in (low, high)]
     values = dict(zip(ends, (low[1], high[1]), strict=True))
     try:
-        root = float(
-            brentq(lambda u: values[u] if u in values else there(u), *ends, xtol=_TIGHT, rtol=1e-14)
-        )
+        root = float(brentq(known_or_there, ends[0], ends[1], xtol=_TIGHT, rtol=1e-14))
         if root not in known:
             there(root)
     except Refused as refused:
