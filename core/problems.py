@@ -528,14 +528,14 @@ _REACTORS: dict[str, Entry] = {
     ),
     "size-basis-needed": Entry(
         "Basis of the size needed",
-        "The rate counts by one thing (fluid, bed, catalyst) and the reactor by another, and what is"
-        " in between is not stated: the bulk density of the catalyst, or the void fraction of the"
+        "The rate counts by one thing (fluid, bed, catalyst) and the reactor by another, and what"
+        " is in between is not stated: the bulk density of the catalyst, or the void fraction of the"
         " bed. State it, or the size on the rate's own basis.",
     ),
     "pressure-exhausted": Entry(
         "Pressure exhausted",
-        "The pressure drop uses up the inlet pressure before the end of the bed. Raise the pressure,"
-        " lower the flow, or state a wider bed or larger particles.",
+        "The pressure drop uses up the inlet pressure before the end of the bed. Raise the pressure"
+        ", lower the flow, or state a wider bed or larger particles.",
     ),
     "rate-does-not-fade": Entry(
         "A rate that does not fade",
