@@ -46,6 +46,10 @@ from core.reactors.trains import end_of_train, gap_at
 from core.streams.stream import Stream
 
 TRIES = 41
+_CLOSE = 1e-5
+"""Of a bracket, to which an extreme is found; its height is then good to ten digits."""
+_FLAT = 1e-9
+"""Of conversion: less than this is no difference."""
 _WIDE = 4.0
 """Ratio of the ends beyond which what is free is tried in equal ratios."""
 _DIMENSIONS: dict[Free, str] = {
@@ -277,6 +281,8 @@ class _Search:
             same = np.sign(before.gap) == np.sign(here.gap) == np.sign(after.gap)
             if not same or not abs(here.gap) <= min(abs(before.gap), abs(after.gap)):
                 continue
+            if _bottom(before, here, after) * np.sign(here.gap) > 0.5 * abs(here.gap):
+                continue
             sign = np.sign(here.gap)
             near = self._least(self._towards(float(sign), before, after), before.value, after.value)
             if near is None or near[1] > 0:
@@ -294,7 +300,7 @@ class _Search:
     ) -> tuple[float, float] | None:
         try:
             solved = minimize_scalar(
-                f, bounds=(low, high), method="bounded", options={"xatol": 1e-9 * abs(high)}
+                f, bounds=(low, high), method="bounded", options={"xatol": _CLOSE * (high - low)}
             )
         except Refused as refused:
             if refused.faults[0].code == "compute-budget":
@@ -318,7 +324,7 @@ class _Search:
         k = int(np.argmax(heights))
         value, height = tries[k].value, heights[k]
         at_end = k in (0, len(tries) - 1)
-        if not at_end:
+        if not at_end and height - min(heights[k - 1], heights[k + 1]) > _FLAT * abs(height):
             found = self._least(lambda v: -of(self.at(v)), tries[k - 1].value, tries[k + 1].value)
             if found is not None and -found[1] > height:
                 value, height = found[0], -found[1]
@@ -370,6 +376,17 @@ class _Place:
     conversion: float
     state: int
     states: int
+
+
+def _bottom(before: _Place, here: _Place, after: _Place) -> float:
+    """Return the extreme of the parabola through three places."""
+    a, b = here.value - before.value, after.value - here.value
+    left, right = (here.gap - before.gap) / a, (after.gap - here.gap) / b
+    bend = (right - left) / (a + b)
+    if bend == 0:
+        return here.gap
+    slope = left + bend * a
+    return here.gap - slope * slope / (4.0 * bend)
 
 
 def _branches(tries: Sequence[_Try]) -> list[list[_Place]]:
