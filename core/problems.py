@@ -529,8 +529,8 @@ _REACTORS: dict[str, Entry] = {
     "size-basis-needed": Entry(
         "Basis of the size needed",
         "The rate counts by one thing (fluid, bed, catalyst) and the reactor by another, and what"
-        " is in between is not stated: the bulk density of the catalyst, or the void fraction of the"
-        " bed. State it, or the size on the rate's own basis.",
+        " is in between is not stated: the bulk density of the catalyst, or the void fraction of"
+        " the bed. State it, or the size on the rate's own basis.",
     ),
     "pressure-exhausted": Entry(
         "Pressure exhausted",
