@@ -518,7 +518,7 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
 _REACTORS: dict[str, Entry] = {
     "one-reaction-only": Entry(
         "One reaction only",
-        "This release sizes reactors for one reaction. Send the one that decides the size.",
+        "What follows the path of one reaction is computed for one. Send the one that decides it.",
     ),
     "size-not-stated": Entry(
         "Size not stated",
