@@ -414,11 +414,11 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
     if branch:
         for k in np.flatnonzero(errors > ACCEPTED).tolist():
             one = follow(network, k, farthest=0.0)
-            states = crossings(network, k, one, lambda ln_v, _y: ln_v, 0.0)
+            states = at_volume(network, k, one)
             if len(states):
-                one_case: IntArray = np.array([k])
-                y[k], stage[k] = states[0, :-1], 4
-                errors[k] = network.evaluate(y[[k]], np.zeros(1), one_case).error[0]
+                case: IntArray = np.array([k])
+                y[k], stage[k] = states[0], 4
+                errors[k] = network.evaluate(y[[k]], np.zeros(1), case).error[0]
     rows = np.arange(n)
     y, errors = _polished(network, y, errors, rows)
     return Found(network.flows(y, rows), network.temperature(y), errors <= ACCEPTED, errors, stage)
@@ -618,6 +618,15 @@ def _corrected(
             return None, trial
         z = new
     return None, 9
+
+
+def at_volume(network: Network, case: int, branch: Branch) -> FloatArray:
+    """Return where a branch passes the volume of its case, shape (k, n), scaled."""
+    points = crossings(network, case, branch, lambda ln_v, _y: ln_v, 0.0)
+    rows: IntArray = np.full(len(points), case)
+    # Along the branch the volume is met to a few digits less than at a volume that is held.
+    y, errors = newton(network, points[:, :-1], np.zeros(len(points)), rows)
+    return y[errors <= ACCEPTED]
 
 
 def crossings(

@@ -20,6 +20,7 @@ from core.numerics.straight_line import Number
 from core.reactors.balances import Balances, Basis
 from core.reactors.network_states import (
     Network,
+    at_volume,
     crossings,
     distinct,
     follow,
@@ -170,7 +171,7 @@ def _searched(
     network = Network(balance)
     one = solve_network(balance, branch=False)
     branch = follow(network, 0)
-    found = [crossings(network, 0, branch, lambda ln_v, _y: ln_v, 0.0)[:, :-1]]
+    found = [at_volume(network, 0, branch)]
     if one.accepted[0]:
         found.append(network.scaled(one.flows, one.temperature))
     found.append(more_states(network, 0, _MORE_STARTS))
