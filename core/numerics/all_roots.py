@@ -368,11 +368,12 @@ def _sampled(problem: Enclosed, runs: _Boxes) -> list[_Root]:
             return problem.value(y, np.full(len(rows), k))
 
         x = np.linspace(float(runs.lower[i]), float(runs.upper[i]), _SAMPLES)
-        signs = np.sign(value(x, np.arange(_SAMPLES)))
-        for j in np.flatnonzero(signs[1:] * signs[:-1] < 0).tolist():
-            root = find_root(value, x[j : j + 1], x[j + 1 : j + 2])
-            found.append((float(root[0]), k, int(signs[j + 1]), False))
-        for j in np.flatnonzero(signs == 0).tolist():
-            turn = int(signs[min(j + 1, _SAMPLES - 1)] - signs[max(j - 1, 0)]) // 2
-            found.append((float(x[j]), k, turn, False))
+        case: IntArray = np.full(_SAMPLES, k)
+        signs = _sign_at(problem, x, problem.at(x, case, None), case)
+        # Where rounding decides there is no sign to count.
+        known: IntArray = np.flatnonzero(signs)
+        changes: IntArray = np.flatnonzero(signs[known[1:]] != signs[known[:-1]])
+        for one, two in zip(known[changes].tolist(), known[changes + 1].tolist(), strict=True):
+            root = find_root(value, x[one : one + 1], x[two : two + 1])
+            found.append((float(root[0]), k, int(signs[two]), False))
     return found

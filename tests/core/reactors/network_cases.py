@@ -138,7 +138,9 @@ def draw(rng: np.random.Generator, cases: int, *, isothermal: bool = False) -> D
 
     def plain(flows: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
         ways = [each_way(list(flows / VOLUMETRIC), t, j) for j in range(r)]
-        forward, reverse = (np.array([np.broadcast_to(w, n) for w in one]) for one in zip(*ways, strict=True))
+        forward, reverse = (
+            np.array([np.broadcast_to(w, n) for w in one]) for one in zip(*ways, strict=True)
+        )
         return forward, reverse
 
     heat, terms = None, None
