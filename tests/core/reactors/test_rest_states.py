@@ -195,9 +195,10 @@ def test_the_number_of_adiabatic_states_is_that_of_the_slope_condition(beta, gam
     assert len(found.case) == expected
     # By the balance, in other words and to more digits.
     with mpmath.workdps(40):
-        for flow, t in zip(found.flows[:, 0], found.temperature, strict=True):
-            left = mpmath.mpf(float(flow)) / FEED
-            x = 1 - left
+        # Conversion and what is left are known each to its own digits.
+        for extent, flow, t in zip(found.extent, found.flows[:, 0], found.temperature, strict=True):
+            x, left = mpmath.mpf(float(extent)) / FEED, mpmath.mpf(float(flow)) / FEED
+            assert abs(x + left - 1) < 1e-15
             there = damkohler * mpmath.exp(gb * x / (1 + beta * x)) * left
             assert abs(there / x - 1) < 1e-11
             assert float(t) == pytest.approx(320.0 * float(1 + beta * x), rel=1e-12)
