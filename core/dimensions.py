@@ -20,6 +20,7 @@ DIMENSIONS: dict[str, Exponents] = {
     "concentration": (0, -3, 0, 0, 1),
     "mass_concentration": (1, -3, 0, 0, 0),
     "mass_per_amount": (1, 0, 0, 0, -1),
+    "diffusivity": (0, 2, -1, 0, 0),
     "temperature": (0, 0, 0, 1, 0),
     "temperature_difference": (0, 0, 0, 1, 0),
     "pressure": (1, -1, -2, 0, 0),

@@ -121,6 +121,15 @@ NOTES: dict[str, Entry] = {
         "An equilibrium constant was used outside the temperatures between which its correlation"
         " is stated to hold.",
     ),
+    "pellet-isothermal": Entry(
+        "Pellet of one temperature",
+        "The effectiveness of a pellet was found for the temperature of the fluid throughout it,"
+        " and the fluid's composition at its surface.",
+    ),
+    "adsorption-takes-up-heat": Entry(
+        "Adsorption that takes up heat",
+        "The enthalpy of an adsorption is above zero, which is rare. Check the sign.",
+    ),
     "affinity-exponent-one": Entry(
         "Affinity exponent 1",
         "The net rate was taken as forward (1 - Q/K) of the equation as written.",
@@ -189,6 +198,16 @@ NOTES: dict[str, Entry] = {
         "A stirred tank can rest in any of its stable states, and a disturbance or another way of"
         " starting can take it from one to another. Runaway is not assessed; follow local codes and"
         " licensed practice.",
+    ),
+    "reactant-exhausted": Entry(
+        "Reactant used up",
+        "The rate does not fade with a reactant, which is used up inside the reactor; beyond there"
+        " nothing reacts.",
+    ),
+    "enthalpy-of-ideal-gas": Entry(
+        "Enthalpies of the ideal gas",
+        "The gas model gives volumes and fugacities; what a real gas's enthalpy differs by is left"
+        " out of the energy balance.",
     ),
     "search-not-proven": Entry(
         "Search that proves nothing",

@@ -443,8 +443,9 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
     "compute-budget": Entry(
         "Compute budget used up",
         "The question takes more work than one request may: an account with very many unknowns or"
-        " readings, or an equilibrium of many reactions at many points. Leave out what does not"
-        " matter, take streams together, ask for fewer points, or split it.",
+        " readings, an equilibrium of many reactions at many points, or a reactor along which rates"
+        " are needed too often. Leave out what does not matter, take streams together, ask for"
+        " fewer points, or split it.",
     ),
     "under-determined": Entry(
         "Readings do not settle the account",
@@ -525,6 +526,38 @@ _REACTORS: dict[str, Entry] = {
         " 'volume' or 'catalyst_mass', of a batch the 'time'; ask /v1/volume for the size that a"
         " target needs.",
     ),
+    "size-basis-needed": Entry(
+        "Basis of the size needed",
+        "The rate counts by one thing (fluid, bed, catalyst) and the reactor by another, and what"
+        " is in between is not stated: the bulk density of the catalyst, or the void fraction of"
+        " the bed. State it, or the size on the rate's own basis.",
+    ),
+    "pressure-exhausted": Entry(
+        "Pressure exhausted",
+        "The pressure drop uses up the inlet pressure before the end of the bed. Raise the pressure"
+        ", lower the flow, or state a wider bed or larger particles.",
+    ),
+    "rate-does-not-fade": Entry(
+        "A rate that does not fade",
+        "A reactant is used up inside the reactor, and the rate of a reaction that consumes it does"
+        " not hang on it: beyond there the rate law says nothing. Give the rate an order above zero"
+        " in it.",
+    ),
+    "no-solution": Entry(
+        "No solution",
+        "No temperature at which a utility that flows against the stream could leave makes it enter"
+        " at its own, or none that can be resolved. Check its flow, temperature and coefficient.",
+    ),
+    "recycle-not-found": Entry(
+        "Recycle not found",
+        "No outlet was found that, with its part returned to the inlet, makes itself again. State a"
+        " smaller recycle ratio or size, or a stirred tank.",
+    ),
+    "heat-capacity-of-liquid-unknown": Entry(
+        "Heat capacity of the liquid unknown",
+        "The liquid is stated by concentrations, beside which a solvent may be in it that is heated"
+        " too. State the flows of everything in it, or its density.",
+    ),
     "train-sizes": Entry(
         "Sizes of a train",
         "Where a size is asked for, exactly one reactor of a train is without one; else every one"
@@ -559,6 +592,22 @@ _REACTORS: dict[str, Entry] = {
         "Unit of the rate constant",
         "The unit does not fit the orders and the driving quantity of the law. The detail says"
         " the unit expected; check orders and unit.",
+    ),
+    "adsorption-constant-unit": Entry(
+        "Unit of a constant of adsorption",
+        "A term of a denominator is a number, so that the unit of its constant follows from its"
+        " orders and the driving quantity. The detail says the unit expected.",
+    ),
+    "effectiveness-needs-first-order": Entry(
+        "Effectiveness by a Thiele modulus needs a first order",
+        "A pellet's effectiveness follows from its modulus, independent of concentration, where the"
+        " rate is of first order in one reactant, irreversible or reversible. State it as a number"
+        " for any other rate.",
+    ),
+    "rate-vanishes": Entry(
+        "The rate vanishes on the way",
+        "Before the target the rate is nothing beside that at the feed, mostly because an"
+        " endothermic reaction cools itself. Ask for less, or feed it hotter.",
     ),
     "rate-not-finite": Entry(
         "Rate without a finite value",
@@ -643,6 +692,12 @@ _REACTORS: dict[str, Entry] = {
         "Integral did not converge",
         "The size is an integral that could not be computed to its tolerance. Check the rate law"
         " for values beyond sense.",
+    ),
+    "march-not-finished": Entry(
+        "Equations not followed to the end",
+        "The equations along a reactor could be followed only so far: there a rate or a state is"
+        " not finite, or changes without bound. Check rate laws, orders, floors and sizes, or ask"
+        " for less.",
     ),
     "not-a-gas": Entry(
         "Not a gas by the equation of state",

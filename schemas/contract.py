@@ -24,6 +24,8 @@ from schemas.equilibrium_answer import EquilibriumAnswer
 from schemas.examples import EXAMPLES
 from schemas.fields import LimitSchema, StrictField, UncertainSchema, quantity_components
 from schemas.problem import ProblemSchema
+from schemas.reactors.operating_point import OperatingPointAnswer, OperatingPointRequest
+from schemas.reactors.rating import RatingAnswer, RatingRequest
 from schemas.reactors.volume import VolumeAnswer, VolumeRequest
 from schemas.stoichiometric_table import StoichiometricTableAnswer, StoichiometricTableRequest
 
@@ -105,6 +107,24 @@ OPERATIONS = (
         (JSON, CSV, HTML),
         VolumeRequest,
         VolumeAnswer,
+    ),
+    Operation(
+        "rating",
+        "POST",
+        "/v1/rating",
+        "what comes out of a reactor of a known size",
+        (JSON, CSV, HTML),
+        RatingRequest,
+        RatingAnswer,
+    ),
+    Operation(
+        "operating-point",
+        "POST",
+        "/v1/operating-point",
+        "the feed rate, temperature or pressure at which a reactor meets a target",
+        (JSON, CSV, HTML),
+        OperatingPointRequest,
+        OperatingPointAnswer,
     ),
     Operation(
         "equilibrium",

@@ -3,18 +3,26 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
 from marshmallow import fields
 
 from core.arrays import FloatArray
-from core.errors import Note, Subject
+from core.dimensions import Exponents
+from core.errors import Amount, Note, Subject
 from core.rates.constants import Arrhenius, Constant, ConstantAt, TemperatureDependent
+from core.rates.equilibrium_constant import VantHoff
+from core.rates.pellet import Pellet
 from core.rates.rate_law import (
     ByAffinity,
+    DenominatorFactor,
+    DenominatorTerm,
     RateLaw,
     ReverseConstant,
+    expected_adsorption_exponents,
+    expected_adsorption_parts,
     expected_unit_exponents,
     expected_unit_parts,
 )
@@ -22,7 +30,7 @@ from core.reactions.reaction_set import ReactionSet
 from core.streams.stream import StreamPhase
 from schemas.edge import Json, RequestReader
 from schemas.equilibrium_constant import read_equilibrium_constant
-from schemas.fields import Choice, Map, Number, OneOf, Quantity, Text, describe
+from schemas.fields import Choice, List, Map, Number, OneOf, Quantity, Text, describe
 from schemas.quantities import RawQuantity
 from schemas.shape import ClosedSchema, child
 from schemas.units import spell
@@ -68,6 +76,119 @@ def rate_constant(**kwargs: object) -> OneOf:
     )
 
 
+def _adsorption_energy() -> Quantity:
+    return Quantity(
+        metadata=describe(
+            "Enthalpy of adsorption, below zero as a rule; or state 'activation_energy', the same"
+            " number in the same place.",
+            examples=["-45 kJ/mol"],
+        )
+    )
+
+
+class AdsorptionSchema(ClosedSchema):
+    """K = pre_exponential T^temperature_exponent exp(-adsorption_enthalpy/(R T))."""
+
+    pre_exponential = Quantity(
+        required=True, metadata=describe("In the unit of K.", examples=["2.1e-6 1/bar"])
+    )
+    adsorption_enthalpy = _adsorption_energy()
+    activation_energy = Quantity(
+        metadata=describe("In place of 'adsorption_enthalpy'.", examples=["-45 kJ/mol"])
+    )
+    temperature_exponent = Number(
+        at_least=-10, at_most=10, load_default=0.0, metadata=describe("Of T/K.")
+    )
+
+
+class AdsorptionAtSchema(ClosedSchema):
+    """A constant of adsorption known at one temperature (van 't Hoff)."""
+
+    at = Quantity(
+        required=True,
+        metadata=describe("The temperature at which it holds.", examples=["550 K"]),
+    )
+    constant = Quantity(required=True, metadata=describe("K there.", examples=["0.8 1/bar"]))
+    adsorption_enthalpy = _adsorption_energy()
+    activation_energy = Quantity(
+        metadata=describe("In place of 'adsorption_enthalpy'.", examples=["-45 kJ/mol"])
+    )
+
+
+class TermSchema(ClosedSchema):
+    """K times powers of the driving quantity."""
+
+    constant = OneOf(
+        {
+            "pre_exponential": fields.Nested(AdsorptionSchema),
+            "at": fields.Nested(AdsorptionAtSchema),
+            "otherwise": Quantity(),
+        },
+        required=True,
+        metadata=describe(
+            "K; its unit is checked against the orders and driving.", examples=["0.8 1/bar"]
+        ),
+    )
+    orders = Map(
+        Number(at_least=-10, at_most=10),
+        at_least=1,
+        at_most=20,
+        required=True,
+        metadata=describe("By substance.", examples=[{"A": 1}]),
+    )
+
+
+class FactorSchema(ClosedSchema):
+    """(leading + sum of the terms)^power."""
+
+    leading = Number(
+        at_least=0,
+        at_most=1e6,
+        load_default=1.0,
+        metadata=describe("The number beside the terms."),
+    )
+    terms = List(
+        fields.Nested(TermSchema), at_most=10, required=True, metadata=describe("Added up.")
+    )
+    power = Number(
+        above=0, at_most=10, load_default=1.0, metadata=describe("Of the factor.", examples=[2])
+    )
+
+
+class PelletSchema(ClosedSchema):
+    """A pellet whose effectiveness follows from its Thiele modulus, of first order.
+
+    The modulus counts the rate constant per volume of pellet, without 'activity'.
+    """
+
+    geometry = Choice("sphere", "cylinder", "slab", required=True)
+    size = Quantity(
+        required=True,
+        metadata=describe(
+            "Radius of a sphere or of a long cylinder, half the thickness of a slab.",
+            examples=["2.5 mm"],
+        ),
+    )
+    diffusivity = Quantity(
+        required=True,
+        metadata=describe("Effective, in the pores.", examples=["3e-6 m2/s"]),
+    )
+    particle_density = Quantity(
+        metadata=describe(
+            "Mass of a pellet over its volume with its pores; where the rate is per catalyst-mass"
+            " and the reactor does not tell.",
+            examples=["1600 kg/m3"],
+        )
+    )
+    void_fraction = Quantity(
+        metadata=describe(
+            "Of the bed between the pellets; where the rate is per bed-volume or fluid-volume and"
+            " the reactor does not tell.",
+            examples=[0.4],
+        )
+    )
+
+
 class AffinitySchema(ClosedSchema):
     """Net rate = forward (1 - (Q/K)^affinity_exponent) with the reaction's equilibrium constant."""
 
@@ -88,7 +209,7 @@ class ReverseSchema(ClosedSchema):
 
 
 class RateSchema(ClosedSchema):
-    """A power-law rate."""
+    """A rate: powers of a driving quantity over a denominator of adsorption, where there is one."""
 
     of = Text(
         metadata=describe(
@@ -96,7 +217,13 @@ class RateSchema(ClosedSchema):
             " is not 1."
         )
     )
-    per = Choice("fluid-volume", required=True, metadata=describe("What the rate is counted by."))
+    per = Choice(
+        "fluid-volume",
+        "bed-volume",
+        "catalyst-mass",
+        required=True,
+        metadata=describe("What the rate is counted by, and so the size that it leads to."),
+    )
     driving = Choice(
         "concentration",
         "partial-pressure",
@@ -114,6 +241,15 @@ class RateSchema(ClosedSchema):
     constant = rate_constant(
         required=True, metadata=describe("Its unit is checked against orders, driving and per.")
     )
+    denominator = OneOf(
+        {
+            "array": List(fields.Nested(FactorSchema), at_most=5),
+            "otherwise": fields.Nested(FactorSchema),
+        },
+        metadata=describe(
+            "A factor, or a list of them, that forward and reverse rate are divided by."
+        ),
+    )
     reversible = OneOf(
         {"constant": fields.Nested(ReverseSchema), "otherwise": fields.Nested(AffinitySchema)},
         metadata=describe("Left out: the rate is irreversible."),
@@ -121,12 +257,17 @@ class RateSchema(ClosedSchema):
     floor = Map(
         Quantity(),
         metadata=describe(
-            "By substance of negative order: below this value of the driving quantity the rate no"
-            " longer rises."
+            "By substance of negative order, of the rate or its denominator: below this value of"
+            " the driving quantity the factor stays as it is."
         ),
     )
-    effectiveness = Number(
-        above=0, at_most=10, load_default=1.0, metadata=describe("A factor on the rate.")
+    effectiveness = OneOf(
+        {
+            "geometry": fields.Nested(PelletSchema),
+            "otherwise": Number(above=0, at_most=10),
+        },
+        load_default=1.0,
+        metadata=describe("A factor on the rate, or the pellet that it follows from."),
     )
     activity = Number(
         above=0, at_most=10, load_default=1.0, metadata=describe("A factor on the rate.")
@@ -134,9 +275,17 @@ class RateSchema(ClosedSchema):
 
 
 def read_rate(
-    document: Json, pointer: str, reader: RequestReader, reactions: ReactionSet, phase: StreamPhase
+    document: Json,
+    pointer: str,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    phase: StreamPhase,
+    reaction: int = 0,
+    *,
+    particle_density: float | None = None,
+    void_fraction: float | None = None,
 ) -> RateLaw | None:
-    """Return the rate law of the one reaction of an account; None after a fault.
+    """Return the rate law of one reaction of an account; None after a fault.
 
     Parameters
     ----------
@@ -147,8 +296,28 @@ def read_rate(
         Where it stands.
     phase : StreamPhase
         In which the reaction runs.
+    reaction : int
+        Its place in the account.
+    particle_density, void_fraction : float, optional
+        kg/m3 and -, as the reactor tells them, for a pellet that does not state its own.
     """
-    return _RateReader(document, pointer, reader, reactions, phase).read()
+    bed = _Bed(particle_density, void_fraction)
+    return _RateReader(document, pointer, reader, reactions, phase, reaction, bed).read()
+
+
+@dataclass(frozen=True)
+class _Bed:
+    particle_density: float | None
+    void_fraction: float | None
+
+
+@dataclass(frozen=True)
+class _Expected:
+    """What the unit of a constant must be, and what is said where it is not."""
+
+    units: Mapping[str, Exponents]
+    code: str
+    why: str
 
 
 @dataclass
@@ -158,13 +327,15 @@ class _RateReader:
     reader: RequestReader
     reactions: ReactionSet
     phase: StreamPhase
+    index: int
+    bed: _Bed
 
     def __post_init__(self) -> None:
         self.rate: Json = self.document["rate"]
         self.place = child(self.pointer, "rate")
         reactions = self.reactions.reactions
         # Without reactions they have been refused, and the rate is read for its own faults.
-        self.reaction = reactions[0] if reactions else None
+        self.reaction = reactions[self.index] if reactions else None
         id_ = self.document.get("id", "r1") if self.reaction is None else self.reaction.id
         self.subject: Subject = ("reactions", id_, "rate")
         self.reader.at(self.subject, self.place)
@@ -178,6 +349,8 @@ class _RateReader:
         of = self._of()
         reverse = self._reverse()
         floors = self._floors()
+        denominator = self._denominator()
+        effectiveness = self._effectiveness()
         if len(self.reader.faults) > kept or constant is None or of is None:
             return None
         return RateLaw(
@@ -188,7 +361,9 @@ class _RateReader:
             reverse=reverse,
             floors=floors,
             activity=self.rate["activity"],
-            effectiveness=self.rate["effectiveness"],
+            effectiveness=effectiveness,
+            denominator=denominator,
+            per=self.rate["per"],
         )
 
     def _index(self, name: str, pointer: str) -> int | None:
@@ -221,7 +396,7 @@ class _RateReader:
             return self._index(self.rate["of"], child(self.place, "of"))
         if self.reaction is None:
             return None
-        nu = self.reactions.nu[0]
+        nu = self.reactions.nu[self.index]
         if np.isin(nu, (-1.0, 0.0, 1.0)).all():
             # Every substance reacts at the same rate, so it matters not whose is given.
             return int(np.flatnonzero(nu)[0])
@@ -236,45 +411,169 @@ class _RateReader:
     def _constant(
         self, document: Json, pointer: str, subject: Subject
     ) -> TemperatureDependent | None:
-        said = document["constant"]
+        driving, per = self.rate["driving"], self.rate["per"]
+        total = math.fsum(document["orders"].values())
+        expected = _Expected(
+            {
+                spell(expected_unit_parts(driving, total, per)): expected_unit_exponents(
+                    driving, total, per
+                )
+            },
+            "rate-constant-unit",
+            f"a rate per {per.replace('-', ' ')} with orders that add up to {total:g} in"
+            f" {driving.replace('-', ' ')} needs",
+        )
+        return self._form(document["constant"], pointer, subject, expected)
+
+    def _form(
+        self, said: Json | RawQuantity, pointer: str, subject: Subject, expected: _Expected
+    ) -> TemperatureDependent | None:
         place, about = child(pointer, "constant"), (*subject, "constant")
         self.reader.at(about, place)
         if isinstance(said, RawQuantity):
-            value = self._value(said, place, about, document)
+            value = self._value(said, place, about, expected)
             return None if value is None else Constant(value)
         name = "pre_exponential" if "pre_exponential" in said else "constant"
-        value = self._value(said[name], child(place, name), (*about, name), document)
-        energy = self.reader.quantity(
-            said["activation_energy"],
-            child(place, "activation_energy"),
-            (*about, "activation_energy"),
-            "molar_energy",
-        )
+        value = self._value(said[name], child(place, name), (*about, name), expected)
+        energy, adsorbs = self._energy(said, place, about)
         if name == "pre_exponential":
             if value is None or energy is None:
                 return None
-            return Arrhenius(value, energy.value, said["temperature_exponent"])
+            return Arrhenius(value, energy, said["temperature_exponent"])
         at = self.reader.quantity(
             said["at"], child(place, "at"), (*about, "at"), "temperature", above=0
         )
         if value is None or energy is None or at is None:
             return None
-        return ConstantAt(at.value, value, energy.value)
+        if adsorbs:
+            return VantHoff(at.value, value, energy)
+        return ConstantAt(at.value, value, energy)
+
+    def _energy(self, said: Json, place: str, about: Subject) -> tuple[float | None, bool]:
+        """Return the energy of a constant, J/mol, and whether it is one of adsorption."""
+        stated = [name for name in ("activation_energy", "adsorption_enthalpy") if name in said]
+        if len(stated) != 1:
+            self.reader.fault(
+                "conflicting-fields" if stated else "field-needed",
+                place,
+                f"found {' and '.join(stated) or 'neither'}; how a constant of adsorption changes"
+                " with temperature needs one of 'adsorption_enthalpy' and 'activation_energy'",
+            )
+            return None, False
+        name = stated[0]
+        where = (*about, name)
+        found = self.reader.quantity(said[name], child(place, name), where, "molar_energy")
+        if found is None:
+            return None, False
+        adsorbs = name == "adsorption_enthalpy"
+        if adsorbs and found.value > 0:
+            self.reader.notes.append(
+                Note(
+                    "adsorption-takes-up-heat",
+                    "the enthalpy of adsorption is {enthalpy}, so that more is adsorbed the hotter"
+                    " it is; adsorption gives off heat as a rule: check the sign",
+                    "warning",
+                    where,
+                    {"enthalpy": Amount(found.value, "molar_energy")},
+                )
+            )
+        return found.value, adsorbs
 
     def _value(
-        self, raw: RawQuantity, pointer: str, subject: Subject, document: Json
+        self, raw: RawQuantity, pointer: str, subject: Subject, expected: _Expected
     ) -> float | None:
-        driving, total = self.rate["driving"], math.fsum(document["orders"].values())
         found = self.reader.constant(
-            raw,
-            pointer,
-            subject,
-            {spell(expected_unit_parts(driving, total)): expected_unit_exponents(driving, total)},
-            "rate-constant-unit",
-            f"a rate per fluid volume with orders that add up to {total:g} in"
-            f" {driving.replace('-', ' ')} needs",
+            raw, pointer, subject, expected.units, expected.code, expected.why
         )
         return None if found is None else found[1]
+
+    def _denominator(self) -> tuple[DenominatorFactor, ...]:
+        said = self.rate.get("denominator", [])
+        place, about = child(self.place, "denominator"), (*self.subject, "denominator")
+        self.reader.at(about, place)
+        single = isinstance(said, dict)
+        factors = []
+        for i, factor in enumerate([said] if single else said):
+            where = place if single else child(place, i)
+            subject = (*about, i)
+            for name in ("leading", "power"):
+                self.reader.at((*subject, name), child(where, name))
+            terms = [
+                self._term(term, child(where, "terms", t), (*subject, "terms", t))
+                for t, term in enumerate(factor["terms"])
+            ]
+            read = tuple(term for term in terms if term is not None)
+            factors.append(DenominatorFactor(factor["leading"], read, factor["power"]))
+        return tuple(factors)
+
+    def _term(self, said: Json, pointer: str, subject: Subject) -> DenominatorTerm | None:
+        driving, total = self.rate["driving"], math.fsum(said["orders"].values())
+        self.reader.at(subject, pointer)
+        orders = self._orders(said, pointer, subject)
+        expected = _Expected(
+            {
+                spell(expected_adsorption_parts(driving, total)): expected_adsorption_exponents(
+                    driving, total
+                )
+            },
+            "adsorption-constant-unit",
+            f"a term of the denominator with orders that add up to {total:g} in"
+            f" {driving.replace('-', ' ')} needs",
+        )
+        constant = self._form(said["constant"], pointer, subject, expected)
+        return None if constant is None else DenominatorTerm(constant, orders)
+
+    def _effectiveness(self) -> float | Pellet:
+        said = self.rate["effectiveness"]
+        if not isinstance(said, dict):
+            return float(said)
+        place, about = child(self.place, "effectiveness"), (*self.subject, "effectiveness")
+        found = {}
+        for name, dimension in (
+            ("size", "length"),
+            ("diffusivity", "diffusivity"),
+            ("particle_density", "mass_concentration"),
+            ("void_fraction", "dimensionless"),
+        ):
+            where = (*about, name)
+            self.reader.at(where, child(place, name))
+            if name not in said:
+                continue
+            above = None if name == "void_fraction" else 0
+            read = self.reader.quantity(
+                said[name], child(place, name), where, dimension, above=above, at_least=0
+            )
+            if read is not None:
+                found[name] = read.value
+        # What is not stated of a bed the reactor may tell.
+        needed = "particle_density" if self.rate["per"] == "catalyst-mass" else "void_fraction"
+        of_bed = getattr(self.bed, needed)
+        if needed not in said and of_bed is not None:
+            found[needed] = of_bed
+        unused = {"particle_density", "void_fraction"} - {needed}
+        for name in sorted(unused & said.keys()):
+            self.reader.fault(
+                "field-not-used",
+                child(place, name),
+                f"a rate per {self.rate['per'].replace('-', ' ')} becomes one per volume of pellet"
+                f" by {needed!r}, and {name!r} would change nothing; leave it out",
+            )
+        self.reader.assumed.append(
+            Note(
+                "pellet-isothermal",
+                "the pellet has the temperature of the fluid around it throughout, and the fluid's"
+                " composition at its surface; the modulus counts the rate constant without"
+                " 'activity'",
+                subject=about,
+            )
+        )
+        return Pellet(
+            said["geometry"],
+            found.get("size", 1.0),
+            found.get("diffusivity", 1.0),
+            found.get("particle_density"),
+            found.get("void_fraction"),
+        )
 
     def _reverse(self) -> ByAffinity | ReverseConstant | None:
         said = self.rate.get("reversible")
@@ -313,7 +612,7 @@ class _RateReader:
             )
             return None
         equilibrium = read_equilibrium_constant(
-            self.document, self.pointer, self.reader, self.reactions, 0, self.phase
+            self.document, self.pointer, self.reader, self.reactions, self.index, self.phase
         )
         if equilibrium is None:
             return None

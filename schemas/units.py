@@ -35,6 +35,7 @@ DEFAULT_UNITS: dict[str, str] = {
     "concentration": "kmol/m3",
     "mass_concentration": "kg/m3",
     "mass_per_amount": "g/mol",
+    "diffusivity": "m2/s",
     "temperature": "K",
     "temperature_difference": "K",
     "pressure": "bar",

@@ -12,7 +12,9 @@ from service import (
     equilibrium,
     information,
     logs,
+    operating_point,
     problem_details,
+    rating,
     stoichiometric_table,
     volume,
 )
@@ -49,7 +51,15 @@ def create_app(max_body: int = MAX_BODY, *, logged: bool = True) -> Flask:
     app.config["MAX_CONTENT_LENGTH"] = max_body
     app.url_map.strict_slashes = True
     app.url_map.merge_slashes = False
-    for module in (information, stoichiometric_table, conversion, volume, equilibrium):
+    for module in (
+        information,
+        stoichiometric_table,
+        conversion,
+        volume,
+        rating,
+        operating_point,
+        equilibrium,
+    ):
         app.register_blueprint(module.blueprint)
     problem_details.register(app)
 

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 from flask import Blueprint
 
+from core.reactors.sensitivity import sensitivities
 from core.reactors.volume import volume
 from schemas.answer import Answer
 from schemas.contract import operation
@@ -22,4 +24,9 @@ def answer(document: Any) -> Answer:
     asked = question.asked
     with edge.locating():
         reacted = volume(asked.problem, question.target, asked.points)
+        if asked.sensitivities:
+            found = sensitivities(
+                asked.problem, reacted, lambda changed: volume(changed, question.target)
+            )
+            reacted = replace(reacted, sensitivities=found)
     return wire.write(question, reacted, edge)

@@ -8,6 +8,7 @@ several times as long as this for one case, and twice as long for thousands.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from typing import TypeAlias
 
@@ -53,6 +54,15 @@ def find_root(
         ``root-not-bracketed``: the signs are equal. ``root-not-converged``: f is
         not finite somewhere in the bracket.
     """
+    if len(lower) == 1:
+        alone: NDArray[np.intp] = np.zeros(1, dtype=np.intp)
+        found = find_one_root(
+            lambda x: float(f(np.array([x]), alone)[0]),
+            float(lower[0]),
+            float(upper[0]),
+            subject=subject,
+        )
+        return np.array([found])
     case: NDArray[np.intp] = np.arange(len(lower))
     x1, x2 = np.asarray(lower, dtype=float), np.asarray(upper, dtype=float)
     root = x1.copy()
@@ -62,13 +72,7 @@ def find_root(
         raise _not_converged(subject, lower, upper, ~finite)
     same = np.sign(f1) * np.sign(f2) > 0
     if same.any():
-        raise refuse(
-            "root-not-bracketed",
-            subject,
-            "a value was sought between {lower} and {upper}, in the method's own coordinate, but "
-            "the residual has the same sign at both: there is none, or more than one",
-            **_bounds(lower, upper, same),
-        )
+        raise _not_bracketed(subject, lower, upper, same)
     # The newest point is 1; the root lies between it and 2; 3 is the one left behind.
     x3, f3 = x2, f2
     share = np.full(len(root), 0.5)
@@ -96,6 +100,44 @@ def find_root(
     raise _not_converged(subject, lower[case], upper[case], np.ones(len(case), dtype=bool))
 
 
+def find_one_root(
+    f: Callable[[float], float], lower: float, upper: float, *, subject: Subject = ()
+) -> float:
+    """Root of one function of a float between two bounds, as :func:`find_root` finds it.
+
+    The same steps in floats, which takes a tenth of the time that arrays of one take.
+    """
+    x1, x2 = lower, upper
+    f1, f2 = f(x1), f(x2)
+    ends = np.array([lower]), np.array([upper]), np.array([True])
+    if not (math.isfinite(f1) and math.isfinite(f2)):
+        raise _not_converged(subject, *ends)
+    if f1 > 0 < f2 or f1 < 0 > f2:
+        raise _not_bracketed(subject, *ends)
+    x3, f3, share = x2, f2, 0.5
+    for _ in range(_MOST_STEPS):
+        width = abs(x2 - x1)
+        tolerance = 2.0 * _EPS * abs(x1) + _TINY
+        if width <= 2.0 * tolerance or f1 == 0 or f2 == 0:
+            return x1 if abs(f1) < abs(f2) else x2
+        least = tolerance / width
+        x = x1 + min(max(share, least), 1.0 - least) * (x2 - x1)
+        y = f(x)
+        if not math.isfinite(y):
+            raise _not_converged(subject, *ends)
+        if (y > 0) == (f1 > 0) and y != 0:
+            x3, f3 = x1, f1
+        else:
+            x3, f3, x2, f2 = x2, f2, x1, f1
+        x1, f1, share = x, y, 0.5
+        if f2 != f1 and f3 != f2 and f3 != f1 and x3 != x2:
+            xi, phi = (x1 - x2) / (x3 - x2), (f1 - f2) / (f3 - f2)
+            if phi * phi < xi and (1.0 - phi) ** 2 < 1.0 - xi:
+                near = f1 / (f2 - f1) * (f3 / (f2 - f3))
+                share = near + (x3 - x1) / (x2 - x1) * (f1 / (f3 - f1)) * (f2 / (f3 - f2))
+    raise _not_converged(subject, *ends)
+
+
 def _next_share(
     x1: FloatArray,
     x2: FloatArray,
@@ -116,6 +158,18 @@ def _next_share(
 
 def _bounds(lower: FloatArray, upper: FloatArray, bad: BoolArray) -> dict[str, str]:
     return {"lower": f"{lower[bad][0]:.6g}", "upper": f"{upper[bad][0]:.6g}"}
+
+
+def _not_bracketed(
+    subject: Subject, lower: FloatArray, upper: FloatArray, bad: BoolArray
+) -> Exception:
+    return refuse(
+        "root-not-bracketed",
+        subject,
+        "a value was sought between {lower} and {upper}, in the method's own coordinate, but "
+        "the residual has the same sign at both: there is none, or more than one",
+        **_bounds(lower, upper, bad),
+    )
 
 
 def _not_converged(

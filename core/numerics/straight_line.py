@@ -376,9 +376,16 @@ class StraightLine:
     def _bound(self, style: str, operations: Mapping[str, Any], case: np.ndarray | None) -> Any:
         text, numbers = self._written(style)
         values = [n[case] if case is not None and isinstance(n, np.ndarray) else n for n in numbers]
-        names: dict[str, Any] = {}
-        exec(_compiled(text), {"__builtins__": {}, **operations}, names)  # noqa: S102 - made here
-        return names["bind"](*values)
+        bind = _bindings.get((text, id(operations)))
+        if bind is None:
+            names: dict[str, Any] = {}
+            exec(_compiled(text), {"__builtins__": {}, **operations}, names)  # noqa: S102 - ours
+            bind = names["bind"]
+            if operations in (_FLOATS, _ARRAY):
+                while len(_bindings) >= _MOST_KEPT:
+                    _bindings.pop(next(iter(_bindings)), None)
+                _bindings[text, id(operations)] = bind
+        return bind(*values)
 
     def _written(self, style: str) -> tuple[str, list[Any]]:
         cached = self._texts.get(style)
@@ -415,7 +422,12 @@ class StraightLine:
         return "\n".join(lines), [self.tape.numbers[at] for at in numbers]
 
 
-@lru_cache(maxsize=256)
+_MOST_KEPT = 256
+_bindings: dict[tuple[str, int], Callable[..., Any]] = {}
+"""What texts were compiled to, for floats and for arrays."""
+
+
+@lru_cache(maxsize=_MOST_KEPT)
 def _compiled(text: str) -> CodeType:
     return compile(text, "<straight line>", "exec")
 

@@ -213,15 +213,17 @@ class Variable:
     root: FloatArray | None
 
     @classmethod
-    def of(cls, path: ReactionPath) -> Variable:
-        """Return the one that suits the ends of the way to the target."""
+    def of(cls, path: ReactionPath, *, to_end: bool = True) -> Variable:
+        """Return the one that suits the ends of the way, to the target or only on towards it."""
         complete = path.target_left == 0
-        ends = bool(complete.any())
+        ends = to_end and bool(complete.any())
         power = 1.0 - path.order_at_exhaustion() if ends else np.ones(path.size)
         root = None
         if path.opposing is not None:
             begins = path.opposing_order_at_start()
-            broken = (begins > 0) & (begins != np.round(begins)) & ~complete
+            broken = (begins > 0) & (begins != np.round(begins))
+            if ends:
+                broken = broken & ~complete
             if broken.any():
                 with np.errstate(divide="ignore"):
                     smooth = np.where(begins < 1, np.minimum(1.0 / begins, 8.0), 2.0)

@@ -178,6 +178,9 @@ def _course(problem: ReactorProblem, basis: Basis, sizing: Sizing, size: float |
     elif size is not None:
         x[-1] = size
     time = sizing.mean_residence_time
+    if time is not None:
+        by_volume = _by_volume(problem, basis)
+        time = None if by_volume is None else time / by_volume
     return Course(
         Observer(balances),
         x,
@@ -188,6 +191,16 @@ def _course(problem: ReactorProblem, basis: Basis, sizing: Sizing, size: float |
         limit=limit_told(sizing),
         notes=sizing.notes,
     )
+
+
+def _by_volume(problem: ReactorProblem, basis: Basis) -> float | None:
+    """Return how much of what the rate counts by is in 1 m3 of reactor; None if not known."""
+    if basis == "volume":
+        return _factor(problem, basis)
+    reactor = problem.reactor
+    if basis == "catalyst_mass" and isinstance(reactor, PackedBed) and reactor.bulk_density:
+        return _factor(problem, "volume")
+    return None
 
 
 def limit_told(sizing: Sizing) -> ConversionLimit:

@@ -25,7 +25,7 @@ from core.errors import Subject, refuse
 from core.numerics.quadrature import IndexArray
 from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.advance import Integrand, Variable, advance, does_not_start, kinks_of, put_out
+from core.reactors.advance import Integrand, Variable, does_not_start, kinks_of
 from core.reactors.path import Place, ReactionPath, check_end
 from core.streams.stream import Stream
 
@@ -99,14 +99,14 @@ def conversion_at(
             subject,
             "the size of a reactor is a finite number, zero or above",
         )
-    moves = (path.limit != 0) & (wanted > 0)
+    case: IndexArray = np.flatnonzero((path.limit != 0) & (wanted > 0))
     u, x_end = np.zeros(n), np.zeros(n, dtype=bool)
-    if moves.any():
-        case: IndexArray = np.flatnonzero(moves)
-        x_end = _comes_to_an_end(path, reactions, wanted, moves, by_volume=by_volume)
-        onward = case[~x_end[case]]
-        if onward.size:
-            u[onward] = _March(path, reactions, wanted, by_volume).find(onward)
+    if case.size:
+        u[case] = _March(path, reactions, wanted, by_volume).find(case)
+        x_end = u >= _FURTHEST * (1.0 - 1e-9)
+        if x_end.any():
+            # Where the rate does not fade with the way, the end is reached and passed.
+            x_end = x_end & ~path.at_equilibrium & (path.order_at_exhaustion() < 1)
     if x_end.any():
         beyond = x_end & path.at_range
         if beyond.any():
@@ -123,33 +123,6 @@ def conversion_at(
         assert there is not None
         path.adiabat.check(reached.target, there[:, 0], subject)
     return reached
-
-
-def _comes_to_an_end(
-    path: ReactionPath,
-    reactions: ReactionSet,
-    wanted: FloatArray,
-    moves: BoolArray,
-    *,
-    by_volume: bool,
-) -> BoolArray:
-    """Return which cases reach their limit itself, because the rate does not fade with it."""
-    finite = moves & ~path.at_equilibrium & (path.order_at_exhaustion() < 1)
-    if not finite.any():
-        return finite
-    # The others are asked for nothing, so that they cost nothing.
-    whole = path.with_target(np.where(finite, 0.0, 1.0), np.where(finite, 1.0, 0.0))
-    every: IndexArray = np.arange(path.size)
-    left, gone = whole.target_left[:, None], whole.target_gone[:, None]
-    dies = finite & put_out(path, Place(every, left, gone, left))
-    if dies.any():
-        finite = finite & ~dies
-        if not finite.any():
-            return finite
-        whole = path.with_target(np.where(finite, 0.0, 1.0), np.where(finite, 1.0, 0.0))
-    way = advance(whole, reactions, 0)
-    total = (way.by_volume if by_volume else way.by_feed_volume)[:, -1]
-    return finite & (wanted >= total)
 
 
 @dataclass(frozen=True, eq=False)
@@ -189,6 +162,9 @@ class _Panels:
 
     def where(self, part: FloatArray) -> FloatArray:
         """Return the variable at which the integral from the start is as given, shape (m,)."""
+        if len(part) == 1:
+            only = _where_in_one(self.series[0].tolist(), float(part[0] / (0.5 * self.width[0])))
+            return self.start + 0.5 * self.width * (1.0 + only)
         scale, whole = 0.5 * self.width, self.integral
         low, high = np.full(len(part), -1.0), np.ones(len(part))
         t = np.clip(-1.0 + 2.0 * part / whole, -1.0, 1.0)
@@ -208,6 +184,35 @@ class _Panels:
                 break
         found: FloatArray = self.start + scale * (1.0 + t)
         return found
+
+
+_RECURRENCE = [((2 * k + 1) / (k + 1), k / (k + 1), 1 / (2 * k + 1)) for k in range(1, _ORDER)]
+"""Of the Legendre polynomials, and what the difference of two counts in an integral."""
+
+
+def _where_in_one(series: list[float], part: float) -> float:
+    """Return t where the integral of one series from -1 is as given, as :meth:`_Panels.where`."""
+    low, high, t = -1.0, 1.0, min(max(-1.0 + part / series[0], -1.0), 1.0)
+    for _ in range(100):
+        before, now = 1.0, t
+        total, slope = series[0] * (1.0 + t), series[0]
+        for (a, b, weight), c in zip(_RECURRENCE, series[1:], strict=True):
+            slope += c * now
+            after = a * t * now - b * before
+            total += c * weight * (after - before)
+            before, now = now, after
+        excess = total - part
+        if excess < 0:
+            low = t
+        else:
+            high = t
+        further = t - excess / slope if slope else 0.5 * (low + high)
+        if not low <= further <= high:
+            further = 0.5 * (low + high)
+        if abs(further - t) <= _ROUNDING:
+            break
+        t = further
+    return t
 
 
 def _antiderivative(series: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -240,7 +245,7 @@ class _March:
     ) -> None:
         self.path, self.reactions, self.wanted = path, reactions, wanted
         self.by_volume = by_volume and path.volume_changes
-        self.variable = Variable.of(path.with_target(np.ones(path.size), np.zeros(path.size)))
+        self.variable = Variable.of(path, to_end=False)
         self.integrand = Integrand(path, self.variable)
         ends: FloatArray = np.full((path.size, 1), _FURTHEST)
         self.furthest = self.variable.from_u(ends)[:, 0]
@@ -249,11 +254,12 @@ class _March:
 
     def find(self, case: IndexArray) -> FloatArray:
         """Return u at which the cases reach what is wanted, at most 700, shape (m,)."""
-        if case.size == 1 and self.kinks is None and self.variable.root is None:
+        found = None
+        if case.size == 1 and self.kinks is None:
             found = self._at_once(case)
-            if found is not None:
-                return found
-        return self.variable.to_u(case, self._outward(case)[:, None])[0][:, 0]
+        if found is None:
+            found = self._outward(case)
+        return self.variable.to_u(case, found[:, None])[0][:, 0]
 
     def _panels(self, case: IndexArray, start: FloatArray, width: FloatArray) -> _Panels:
         parts = []
@@ -268,8 +274,10 @@ class _March:
         return np.broadcast_to(y, x.shape)
 
     def _at_once(self, case: IndexArray) -> FloatArray | None:
-        """Return u of one case from panels evaluated together; None where they do not do."""
+        """Return the variable of one case from panels seen together; None where they do not do."""
         edges, wanted = _AT_ONCE, float(self.wanted[case[0]])
+        if self.variable.root is not None:
+            edges = edges ** (1.0 / float(self.variable.root[case[0]]))
         x = edges[:-1, None] + np.diff(edges)[:, None] * (0.5 + 0.5 * _NODES)
         y = self._values(case, x.reshape(1, -1)).reshape(x.shape)
         with np.errstate(invalid="ignore", over="ignore"):

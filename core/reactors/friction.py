@@ -77,7 +77,7 @@ def friction_of(bed: PackedBed, mass_flow: float, length: float | None) -> Frict
     mass_flow : float
         kg/s, of all tubes.
     length : float or None
-        m; needed where a clean bed's drop was measured.
+        m; needed where a clean bed's drop was measured on this bed.
 
     Raises
     ------
@@ -105,14 +105,15 @@ def friction_of(bed: PackedBed, mass_flow: float, length: float | None) -> Frict
     )
     if bed.clean_bed is None:
         return made
-    if length is None:
+    measured_on = length if bed.clean_bed.length is None else bed.clean_bed.length
+    if measured_on is None:
         raise refuse(
-            "size-needed",
-            ("reactor", "clean_bed"),
-            "the drop of the clean bed tells its friction only with the length of the bed, which"
-            " is what is asked for; ask for a rating, or leave 'clean_bed' out",
+            "field-needed",
+            ("reactor", "clean_bed", "length"),
+            "the drop of the clean bed tells its friction only with the length of the bed that it"
+            " was measured on; state it",
         )
-    return replace(made, factor=_measured_over_computed(made, bed.clean_bed, length))
+    return replace(made, factor=_measured_over_computed(made, bed.clean_bed, measured_on))
 
 
 def _measured_over_computed(made: Friction, clean: CleanBed, length: float) -> float:

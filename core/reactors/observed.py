@@ -23,6 +23,9 @@ from core.reactors.problem import (
 )
 from core.streams.stream import Stream
 
+_TRACE = 1e-8
+"""Of what flows."""
+
 
 @dataclass(frozen=True, eq=False)
 class Fed:
@@ -89,8 +92,8 @@ class Observer:
         found = self._everything.on_arrays()(x, y.T)
         spread = [np.broadcast_to(np.asarray(v, dtype=float), n) for v in found]
         volume, z, held = spread[:3]
-        flows = y[:, : layout.substances]
         feed = balances.feed
+        flows = self._not_below_zero(y[:, : layout.substances])
         start = State(balances, list(y[0]))
         t = y[:, layout.temperature] if layout.temperature is not None else start.temperature
         if feed.phase != "gas":
@@ -113,6 +116,22 @@ class Observer:
             compressibility=z,
             rates=np.stack(spread[3:], axis=1),
         )
+
+    def _not_below_zero(self, flows: FloatArray) -> FloatArray:
+        """Return flows of which a trace below zero, as a march may leave, is nothing."""
+        total = np.abs(flows).sum(axis=1, keepdims=True)
+        if (flows < -_TRACE * total).any():
+            names = self._problem.reactions.names
+            i = int((flows / total).min(axis=0).argmin())
+            raise refuse(
+                "rate-does-not-fade",
+                ("reactions",),
+                "{substance} would be used up inside the reactor and further, because the rate of"
+                " a reaction that consumes it does not fade with it; give it an order in"
+                " {substance} above zero",
+                substance=names[i],
+            )
+        return np.maximum(flows, 0.0)
 
     def _brought(self, x: FloatArray) -> FloatArray:
         """Return what a fed batch has got by then, mol, shape (n, S)."""
@@ -150,7 +169,7 @@ class Observer:
             liquid = float(seen.volume[at])
         return replace(
             feed,
-            flows=np.maximum(seen.flows[at], 0.0),
+            flows=seen.flows[at],
             temperature=None if t is None else float(t[at]),
             pressure=None if p is None else float(p[at]),
             compressibility=float(seen.compressibility[at]),

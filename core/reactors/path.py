@@ -21,6 +21,8 @@ where a feed lies beyond equilibrium.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
+from copy import copy
 from dataclasses import dataclass, field, replace
 from enum import Enum
 from functools import cached_property
@@ -30,12 +32,13 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fact, Fault, Refused, Subject, refuse
 from core.numerics.quadrature import IndexArray
-from core.numerics.roots import find_root
+from core.numerics.roots import find_one_root, find_root
 from core.rates.pellet import Per
 from core.rates.power_product import FlooredFactor, PowerProduct, Rows, Warmth, spread
 from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.adiabat import Adiabat, adiabat
+from core.reactors.single_case import SingleCase
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats
 
@@ -275,6 +278,10 @@ class ReactionPath:
         net : ndarray, shape (m, q) or (m, 1)
             Share of it that the opposing rate leaves, 0 to 1.
         """
+        if self._single is not None:
+            with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+                single, share = self._single.ln_rate(place.gone, place.left, place.ln_left)
+            return single, _WHOLE if isinstance(share, float) else share
         rows = _rows(place.case, self.size)
         warmth = self.warmth(place)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
@@ -296,6 +303,26 @@ class ReactionPath:
                 near = self._ln_opposing(place, rows)
                 ln_opposing = np.where(from_equilibrium, near, ln_opposing)
             return along, -np.expm1(ln_opposing)
+
+    @cached_property
+    def _single(self) -> SingleCase | None:
+        """Of one isothermal case without floors."""
+        products = [self.rate, *(term for one in self.hindrances for term in one.terms)]
+        if self.opposing is not None:
+            products.append(self.opposing)
+        if self.size > 1 or self.adiabat is not None or any(p.floored for p in products):
+            return None
+        account, pores = self.account, self.pores
+        columns = (account.start[0].tolist(), account.change[0].tolist(), account.end[0].tolist())
+        return SingleCase(
+            columns,
+            float(self.ln_key_concentration[0]),
+            0.0 if pores is None else float(pores.ln_effectiveness(lambda a: a[:, None])[0, 0]),
+            self.rate,
+            self.opposing,
+            self.hindrances,
+            at_equilibrium=bool(self.at_equilibrium[0]),
+        )
 
     def _ln_opposing(self, place: Place, rows: Rows) -> FloatArray:
         assert self.opposing is not None
@@ -357,7 +384,9 @@ class ReactionPath:
         left, gone : ndarray, shape (N,)
             1 - X/X_limit and X/X_limit.
         """
-        return replace(self, target=self.limit * gone, target_left=left, target_gone=gone)
+        there = copy(self)
+        there.__dict__.update(target=self.limit * gone, target_left=left, target_gone=gone)
+        return there
 
 
 _WHOLE: FloatArray = np.ones((1, 1))
@@ -773,6 +802,33 @@ class _Imbalance:
             value = self.opposing.ln_value(lambda j: ln[:, j, None], rows, warmth)
         return np.broadcast_to(value[:, 0], logit.shape)
 
+    @property
+    def stands_alone(self) -> bool:
+        """Whether it is one isothermal case without floors, which floats do for."""
+        return len(self.ln_c0) == 1 and self.adiabat is None and not self.opposing.floored
+
+    def of_one(self) -> Callable[[float], float]:
+        """Return it as a function of a float, of one case that stands alone."""
+        whole, opposing = self.whole, self.opposing
+        last = whole.start.shape[1] - 1
+        exponents = opposing.exponents[0].tolist()
+        columns = [
+            (power, *(float(a[0, j]) for a in (whole.start, whole.change, whole.end)))
+            for j, power in [*enumerate(exponents), (last, -math.fsum(exponents))]
+            if power
+        ]
+        fixed = float(opposing.ln_factor[0]) + math.fsum(exponents) * float(self.ln_c0[0])
+
+        def imbalance(logit: float) -> float:
+            gone, left = 1.0 / (1.0 + math.exp(-logit)), 1.0 / (1.0 + math.exp(logit))
+            total = fixed
+            for power, start, change, end in columns:
+                amount = end - change * left if change < 0 else start + change * gone
+                total += power * (math.log(amount) if amount > 0 else -math.inf)
+            return total
+
+        return imbalance
+
     def at(self, points: FloatArray, cases: IndexArray) -> FloatArray:
         """Return it at the same logits of some cases, shape (m, p)."""
         values = np.empty((len(cases), points.size))
@@ -797,6 +853,11 @@ def _equilibrium(imbalance: _Imbalance, one: bool) -> tuple[FloatArray, FloatArr
     """
     n = len(imbalance.ln_c0)
     moves: IndexArray = np.flatnonzero(imbalance.whole.change.any(axis=1))
+    if one and moves.size and imbalance.stands_alone:
+        alone = _single_root(imbalance.of_one())
+        if alone is not None:
+            at = np.array([alone])
+            return _share(at), _share(-at), at < _FAR
     logit, found = np.full(n, _FAR), np.zeros(n, dtype=bool)
     several: BoolArray = np.full(len(moves), not one)
     if one:
@@ -811,6 +872,27 @@ def _equilibrium(imbalance: _Imbalance, one: bool) -> tuple[FloatArray, FloatArr
         bent = moves[several]
         logit[bent], found[bent] = _first_root(imbalance, _SCAN, imbalance.at(_SCAN, bent), bent)
     return _share(logit), _share(-logit), found
+
+
+def _single_root(imbalance: Callable[[float], float]) -> float | None:
+    """Return the logit of the one equilibrium, ``_FAR`` if there is none; None if not told."""
+    low, high = imbalance(-_FAR), imbalance(_FAR)
+    if math.isnan(low) or math.isnan(high):
+        return None
+    if low >= 0:
+        return -_FAR
+    if high < 0:
+        return _FAR
+    beyond = imbalance(0.0) < 0
+    near, far = 0.0, 2.0 if beyond else -2.0
+    while (imbalance(far) < 0) == beyond and abs(far) < _FAR:
+        near, far = far, 4.0 * far
+    far = min(max(far, -_FAR), _FAR)
+    if not (math.isfinite(imbalance(near)) and math.isfinite(imbalance(far))):
+        return None
+    return find_one_root(
+        imbalance, min(near, far), max(near, far), subject=("target", "conversion")
+    )
 
 
 def _first_root(

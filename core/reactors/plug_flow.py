@@ -66,20 +66,21 @@ class PlugFlow:
         found = path.key_flow * way.by_feed_volume[:, -1]
         by_volume = path.per != "catalyst-mass"
         v0 = path.key_flow / path.key_concentration
+        space_time = path.key_concentration * way.by_feed_volume[:, -1]
         residence = path.key_concentration * way.by_volume[:, -1]
         if size is not None:
             given = np.broadcast_to(np.asarray(size, dtype=float), lead).reshape(-1)
             # What is left of the size when nothing reacts any more is passed at the outlet's flow.
             idle = np.where(path.target_left < _NOTHING_LEFT, given - found, 0.0)
             residence = residence + idle / (v0 * path.volume_ratio(target_place(path))[:, 0])
-            found = given
+            found, space_time = given, given / v0
         return Sizing(
             size=found.reshape(lead),
             conversion=path.target.reshape(lead),
             distance_to_limit=path.target_left.reshape(lead),
             limit=limit_of(path),
-            space_time=(found / v0).reshape(lead) if by_volume else None,
-            mean_residence_time=residence.reshape(lead) if path.per == "fluid-volume" else None,
+            space_time=space_time.reshape(lead) if by_volume else None,
+            mean_residence_time=residence.reshape(lead),
             outlet=outlet_stream(problem, path, constant_volume=False),
             outlet_rate=signed(path, way.rate)[:, -1].reshape(lead),
             profile=_profile(path, way, path.key_flow[:, None] * way.by_feed_volume, points),

@@ -9,7 +9,7 @@ import numpy as np
 from scipy.optimize import brentq
 
 from core.arrays import FloatArray
-from core.errors import Refused, Subject
+from core.errors import Refused
 
 _T = TypeVar("_T")
 
@@ -21,9 +21,7 @@ _LEAPS = 1e-6
 does not leap."""
 
 
-def first_size(
-    at: Callable[[float], tuple[float, _T]], scale: float, subject: Subject
-) -> _T | None:
+def first_size(at: Callable[[float], tuple[float, _T]], scale: float) -> _T | None:
     """Return what belongs to the smallest size at which a function crosses zero; None if none.
 
     Parameters
@@ -32,15 +30,12 @@ def first_size(
         The function at a size, and what belongs to it; may refuse.
     scale : float
         The size around which is looked.
-    subject : Subject
-        Unused where nothing is refused.
 
     Raises
     ------
     Refused
         ``compute-budget``; what every size was refused for.
     """
-    del subject
     seen: list[tuple[float, float]] = []
     refusal: Refused | None = None
     for ratio in SIZES.tolist():
@@ -93,12 +88,13 @@ def bracketed(
         known[u] = at(x)
         return known[u][0]
 
+    def known_or_there(u: float) -> float:
+        return values[u] if u in values else there(u)
+
     ends = [float(np.log(x)) if logarithmic else x for x, _ in (low, high)]
     values = dict(zip(ends, (low[1], high[1]), strict=True))
     try:
-        root = float(
-            brentq(lambda u: values[u] if u in values else there(u), *ends, xtol=_TIGHT, rtol=1e-14)
-        )
+        root = float(brentq(known_or_there, ends[0], ends[1], xtol=_TIGHT, rtol=1e-14))
         if root not in known:
             there(root)
     except Refused as refused:

@@ -149,7 +149,8 @@ class Sizing:
         V/v at the inlet, s. None for a batch, and of a mass of catalyst.
     mean_residence_time : ndarray, shape (...), or None
         Integral of dV/v, s; of tanks the sum of V/v at the outlet of each.
-        None for a batch, and where the volume of the fluid is not known.
+        V is what the rate counts by: m3 of fluid or bed, kg of catalyst. None for
+        a batch.
     outlet : Stream
         Flows of shape (..., S); for a batch the amounts at the end.
     outlet_rate : ndarray, shape (...)

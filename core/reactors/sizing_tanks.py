@@ -7,7 +7,8 @@ from dataclasses import replace
 
 import numpy as np
 
-from core.errors import Amount, Fact, Fault, Refused
+from core.arrays import FloatArray
+from core.errors import Amount, Fact, Fault, Note, Refused
 from core.reactors import along_path, stirred_tank
 from core.reactors.balances import Balances, Basis, rate_factor
 from core.reactors.marching import Work
@@ -17,14 +18,18 @@ from core.reactors.problem import (
     ConversionTarget,
     PlugFlow,
     ReactorProblem,
+    Size,
     StirredTank,
     TanksInSeries,
     Target,
 )
 from core.reactors.scanning import first_size
 from core.reactors.sizing import SizingProblem, size_reactor
+from core.reactors.steady_states import sizes_for
 from core.reactors.tanks import through_tanks
 from core.reactors.telling import Course
+
+_Sized = Callable[[float], tuple[float, Course]]
 
 
 def tanks_for(
@@ -88,18 +93,65 @@ def _conversion(problem: ReactorProblem, before: Fed, target: Target) -> float |
 def _searched(
     problem: ReactorProblem, basis: Basis, before: Fed, work: Work, target: Target
 ) -> Course:
-    """Return the course through the smallest size at which a state meets the target."""
+    """Return the course through the smallest size at which a state meets the target.
+
+    Of one tank along the branch of its states, unstable ones with it; of several, of
+    the states that each is taken to stand in.
+    """
     scale = tank_scale(problem, basis)
+    if not isinstance(problem.reactor, TanksInSeries) or problem.reactor.number == 1:
+        return _along_branch(problem, basis, before, work, target, scale)
 
     def at(size: float) -> tuple[float, Course]:
         course = through_tanks(problem, basis, before, work, size)
         gap = course.observer.gap(target).on_floats()
         return gap(float(course.x[-1]), course.y[-1].tolist())[0], course
 
-    found = first_size(at, scale, ("target",))
+    found = first_size(at, scale)
     if found is None:
         raise _out_of_reach(at, scale)
     return found
+
+
+def _along_branch(
+    problem: ReactorProblem,
+    basis: Basis,
+    before: Fed,
+    work: Work,
+    target: Target,
+    scale: float,
+) -> Course:
+    """Return the course through the smallest of the sizes on the branch of states."""
+    inside = replace(problem, reactor=StirredTank())
+    balances = Balances(inside, basis, problem.feed)
+    gap = Observer(balances, before).gap(target).on_arrays()
+    layout = balances.layout
+    start = balances.start()
+
+    def quantity(flows: FloatArray, temperature: FloatArray | None, size: FloatArray) -> FloatArray:
+        y = np.repeat(start[:, None], len(flows), axis=1)
+        y[: layout.substances] = flows.T
+        if layout.temperature is not None and temperature is not None:
+            y[layout.temperature] = temperature
+        return np.broadcast_to(np.asarray(gap(size, y)[0], dtype=float), len(flows))
+
+    found = sizes_for(inside, problem.feed, Size(basis, scale), quantity, 0.0)
+    if not found:
+        raise _out_of_reach(
+            lambda size: (0.0, through_tanks(problem, basis, before, work, size)), scale
+        )
+    size, state = min(found, key=lambda each: each[0].value)
+    gone = float(problem.feed.flows[problem.key]) * state.conversion + before.consumed
+    near = gone / float(before.flows[problem.key])
+    course = through_tanks(problem, basis, before, work, size.value, near)
+    if len(found) == 1:
+        return course
+    note = Note(
+        "several-volumes",
+        f"{len(found)} sizes reach the target, because the rate rises with conversion or"
+        " temperature over part of the way; the smallest is given",
+    )
+    return replace(course, notes=(note, *course.notes))
 
 
 def tank_scale(problem: ReactorProblem, basis: Basis) -> float:
@@ -112,11 +164,11 @@ def tank_scale(problem: ReactorProblem, basis: Basis) -> float:
     return float(problem.feed.flows.sum()) / moved if moved else 1.0
 
 
-def _out_of_reach(at: Callable[[float], tuple[float, Course]], scale: float) -> Refused:
+def _out_of_reach(at: _Sized, scale: float) -> Refused:
     facts: dict[str, Fact] = {}
     detail = "no size meets the target"
     try:
-        _, course = at(1e6 * scale)
+        _, course = at(1e3 * scale)
     except Refused:
         pass
     else:

@@ -141,7 +141,7 @@ def _size(problem: SizingProblem, number: int) -> Sizing:
         distance_to_limit=path.target_left.reshape(lead),
         limit=limit_of(path),
         space_time=(number * volume / v0).reshape(lead) if by_volume else None,
-        mean_residence_time=residence.reshape(lead) if path.per == "fluid-volume" else None,
+        mean_residence_time=residence.reshape(lead),
         outlet=outlet_stream(problem, path, constant_volume=False),
         outlet_rate=signed(path, rates)[:, -1].reshape(lead),
         tanks=tanks if number > 1 else None,

@@ -178,6 +178,14 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
     )
 
 
+def outlet_of(course: Course) -> Stream:
+    """Return what leaves, without telling anything else of it."""
+    seen = course.observer.see(course.x[-1:], course.y[-1:])
+    check_temperatures(course.balances.problem, seen.temperature)
+    check_gas(course.balances.problem, seen)
+    return course.observer.stream(seen)
+
+
 def _extents(problem: ReactorProblem, course: Course, seen: Seen) -> tuple[FloatArray, bool]:
     """Return the extents at the end, and whether they are the only ones."""
     if seen.extents is not None:
@@ -226,9 +234,7 @@ def check_gas(problem: ReactorProblem, seen: Seen) -> None:
     gas = problem.gas
     if gas is None or seen.temperature is None or seen.pressure is None:
         return
-    z = gas.known_compressibility(
-        seen.temperature, seen.pressure, np.maximum(seen.flows, 0.0), ("reactor",)
-    )
+    z = gas.known_compressibility(seen.temperature, seen.pressure, seen.flows, ("reactor",))
     off = np.abs(z / seen.compressibility - 1.0)
     if off.max() > _SAME_Z:
         at = int(off.argmax())
@@ -302,7 +308,7 @@ def profile_of(problem: ReactorProblem, course: Course, seen: Seen, points: int)
         length=length,
         time=seen.x[at] if basis == "time" else None,
         extents=some(seen.extents),
-        flows=np.maximum(seen.flows[at], 0.0),
+        flows=seen.flows[at],
         temperature=some(seen.temperature),
         pressure=some(seen.pressure),
         utility_temperature=some(seen.utility),

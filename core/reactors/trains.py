@@ -32,7 +32,7 @@ from core.reactors.reacted import Reacted, StageReached
 from core.reactors.scanning import first_size
 from core.reactors.sizing_tanks import tank_scale
 from core.reactors.solving import basis_of, fed_of, run, size_for
-from core.reactors.telling import assumptions, remarks, tell
+from core.reactors.telling import assumptions, outlet_of, remarks, tell
 from core.streams.stream import Stream
 
 METHOD = "stage by stage"
@@ -78,7 +78,7 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
     Raises
     ------
     Refused
-        ``size-not-stated``: not exactly one is without. As each stage.
+        ``train-sizes``: not exactly one is without. As each stage.
     """
     train = _train(problem)
     open_ = [
@@ -88,7 +88,7 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
     ]
     if len(open_) != 1:
         raise refuse(
-            "size-not-stated",
+            "train-sizes",
             ("reactor", "stages"),
             "{count} reactors of the train are without a size; the size of exactly one is found:"
             " leave it out there, and state it of the others",
@@ -113,12 +113,14 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
         )
     basis = basis_of(inside)
 
-    def at(size: float) -> tuple[float, _At]:
-        sized = replace(stage, reactor=replace(stage.reactor, size=Size(basis, size)))
-        end = _through(problem, (sized, *rest), before, points, work)
-        return gap_at(problem, end.stream, end.fed, target), end
+    def stages(size: float) -> tuple[Stage, ...]:
+        return (replace(stage, reactor=replace(stage.reactor, size=Size(basis, size))), *rest)
 
-    found = first_size(at, tank_scale(inside, basis), ("target",))
+    def at(size: float) -> tuple[float, float]:
+        end = _through(problem, stages(size), before, None, work)
+        return gap_at(problem, end.stream, end.fed, target), size
+
+    found = first_size(at, tank_scale(inside, basis))
     if found is None:
         raise Refused(
             [
@@ -131,7 +133,13 @@ def size_train(problem: ReactorProblem, target: Target, points: int, work: Work)
                 )
             ]
         )
-    return _told(problem, found)
+    return _told(problem, _through(problem, stages(found), before, points, work))
+
+
+def end_of_train(problem: ReactorProblem, work: Work) -> tuple[Stream, Fed]:
+    """Return what leaves a train whose reactors all have a size, and what was fed to it."""
+    end = _through(problem, _train(problem).stages, _start(problem), None, work)
+    return end.stream, end.fed
 
 
 def gap_at(problem: ReactorProblem, stream: Stream, fed: Fed, target: Target) -> float:
@@ -172,8 +180,9 @@ def _inside(problem: ReactorProblem, stage: ReactorStage, stream: Stream) -> Rea
 
 
 def _through(
-    problem: ReactorProblem, stages: tuple[Stage, ...], at: _At, points: int, work: Work
+    problem: ReactorProblem, stages: tuple[Stage, ...], at: _At, points: int | None, work: Work
 ) -> _At:
+    """Go through stages; without a number of points nothing is told of the reactors."""
     for stage in stages:
         try:
             at = _pass(problem, stage, at, points, work)
@@ -190,11 +199,14 @@ def _in_stage(fault: Fault, stage: str) -> Fault:
     return Fault(fault.code, fault.subject, "in the stage {in_stage}: " + fault.detail, facts)
 
 
-def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int, work: Work) -> _At:
+def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int | None, work: Work) -> _At:
     where = ("reactor", "stages", stage.id)
     if isinstance(stage, ReactorStage):
         inside = _inside(problem, stage, at.stream)
         course = run(inside, at.fed, work)
+        if points is None:
+            stream = outlet_of(course)
+            return replace(at, stream=stream, fed=_fed_after(problem, at, stream))
         return _after(problem, stage, at, tell(inside, course, points))
     key = problem.key
     if isinstance(stage, MixStage):
@@ -249,10 +261,13 @@ def _other(
     return replace(at, stream=stream, fed=fed, reached=(*at.reached, stage))
 
 
+def _fed_after(problem: ReactorProblem, at: _At, outlet: Stream) -> Fed:
+    gone = float(at.stream.flows[problem.key] - outlet.flows[problem.key])
+    return Fed(at.fed.flows, at.fed.consumed + gone)
+
+
 def _after(problem: ReactorProblem, stage: ReactorStage, at: _At, reacted: Reacted) -> _At:
-    key = problem.key
-    gone = float(at.stream.flows[key] - reacted.outlet.flows[key])
-    fed = Fed(at.fed.flows, at.fed.consumed + gone)
+    fed = _fed_after(problem, at, reacted.outlet)
     told = StageReached(
         id=stage.id,
         kind=stage.reactor.kind,

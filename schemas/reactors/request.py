@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import TypeVar
 
 from marshmallow import fields
@@ -172,19 +172,10 @@ def _read_rates(
                 " 'equation' and 'rate'",
             )
             continue
-        law = read_rate(said, pointer, reader, _alone(reactions, j), phase)
+        law = read_rate(said, pointer, reader, reactions, phase, j)
         laws.append(law)
         constants.append(_constant_of(said, law, reader, reactions, j, phase))
     return laws, tuple(constants)
-
-
-def _alone(reactions: ReactionSet, j: int) -> ReactionSet:
-    """Return one reaction among all substances, as its rate is read."""
-    if len(reactions.reactions) < 2:
-        return reactions
-    return replace(
-        reactions, reactions=(reactions.reactions[j],), nu=reactions.nu[j : j + 1], rank=1
-    )
 
 
 def _constant_of(

@@ -554,6 +554,39 @@ case(
     "/reactions/0/rate/constant",
 )
 case(
+    "adsorption-constant-unit",
+    volume(
+        reactions__0__rate__denominator={"terms": [{"constant": "2 1/bar", "orders": {"A": 1}}]}
+    ),
+    "/reactions/0/rate/denominator/terms/0/constant",
+)
+case(
+    "effectiveness-needs-first-order",
+    volume(
+        reactions__0__rate__orders={"A": 2},
+        reactions__0__rate__constant="1 m3/(kmol min)",
+        reactions__0__rate__effectiveness={
+            "geometry": "sphere",
+            "size": "2 mm",
+            "diffusivity": "1e-9 m2/s",
+            "void_fraction": 0.4,
+        },
+    ),
+    "/reactions/0/rate/effectiveness",
+)
+case(
+    "rate-vanishes",
+    volume(
+        feed={**GAS_FEED, "flows": {"A": "1e-12 mol/s", "N2": "1 mol/s"}},
+        reactions__0__rate__driving="mole-fraction",
+        reactions__0__rate__orders={"A": 9},
+        reactions__0__rate__constant="1 mol/(m3 s)",
+        reactions__0__rate__activity=1e-150,
+        target={"conversion": 1 - 1e-14},
+    ),
+    "/target/conversion",
+)
+case(
     "rate-constant-out-of-range",
     volume(
         feed__temperature="300 K",
@@ -782,6 +815,7 @@ ELSEWHERE = {
     "root-not-converged": "tests/core/numerics/test_roots.py",
     "steady-state-not-found": "tests/core/reactors/test_network_states.py",
     "integral-not-converged": "tests/core/numerics/test_quadrature.py",
+    "march-not-finished": "tests/core/numerics/test_integration.py",
 }
 """Codes that no JSON request to a calculation brings about, and the test that does."""
 

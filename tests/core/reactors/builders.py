@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 
@@ -12,8 +14,11 @@ from core.rates.power_product import Driving
 from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import Reaction, ReactionSet
 from core.reactors.sizing import ReactorKind, Sizing, SizingProblem, size_reactor
-from core.streams.stream import Stream
-from core.substances.substance import Substance
+from core.streams.stream import Stream, StreamPhase
+from core.substances.heat_capacity import HeatCapacity
+from core.substances.substance import StatedProperties, Substance
+from core.thermochemistry.heat_balance import StatedHeat
+from core.thermochemistry.known_heats import KnownHeats, known_heats
 
 
 def reaction_set(nu: Mapping[str, float], *, condensed: tuple[str, ...] = ()) -> ReactionSet:
@@ -75,7 +80,7 @@ def rate_law(
     driving: Driving = "concentration",
     reverse: ByAffinity | ReverseConstant | None = None,
     floors: Mapping[str, float] | None = None,
-    **factors: float,
+    **factors: Any,
 ) -> RateLaw:
     return RateLaw(
         0 if of is None else reactions.index(of),
@@ -97,7 +102,37 @@ def size(
     *,
     key: str | None = None,
     points: int = 0,
+    adiabatic: KnownHeats | None = None,
 ) -> Sizing:
     """Return the answer; the first substance is the key unless another is named."""
     index = 0 if key is None else reactions.index(key)
-    return size_reactor(SizingProblem(reactions, index, feed, law, target, reactor), points)
+    problem = SizingProblem(reactions, index, feed, law, target, reactor, adiabatic)
+    return size_reactor(problem, points)
+
+
+def heats(
+    reactions: ReactionSet,
+    heat: float,
+    heat_capacities: Mapping[str, float | HeatCapacity],
+    at: float = 298.15,
+    of: str | None = None,
+    phase: StreamPhase = "gas",
+) -> KnownHeats:
+    """Return what is known of one reaction's heat, J/mol of ``of``, with stated heat capacities."""
+    substances = tuple(
+        replace(
+            substance,
+            stated=StatedProperties(
+                heat_capacity=cp if isinstance(cp, HeatCapacity) else HeatCapacity.constant(cp)
+            ),
+        )
+        for substance in reactions.substances
+        for cp in [heat_capacities[substance.name]]
+    )
+    index = 0 if of is None else reactions.index(of)
+    return known_heats(
+        replace(reactions, substances=substances),
+        phase,
+        lambda name: ("species", name),
+        {0: StatedHeat(heat, index, at)},
+    )

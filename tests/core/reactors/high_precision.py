@@ -9,11 +9,31 @@ from __future__ import annotations
 
 import mpmath as mp
 
+from core.constants import GAS_CONSTANT
+from core.rates.constants import Arrhenius, Constant, ConstantAt
+from core.rates.equilibrium_constant import VantHoff
 from core.rates.rate_law import ByAffinity
 from core.reactors.sizing import SizingProblem
 
 DIGITS = 40
 R = mp.mpf("8.31446261815324")
+
+
+def constant_at(form, t):
+    """Return a constant at a temperature, mpf, by its definition."""
+    r = mp.mpf(GAS_CONSTANT)
+    if isinstance(form, Constant):
+        return mp.mpf(float(form.value))
+    if isinstance(form, Arrhenius):
+        a, e, n = (
+            mp.mpf(float(x))
+            for x in (form.pre_exponential, form.activation_energy, form.temperature_exponent)
+        )
+        return a * t**n * mp.exp(-e / (r * t))
+    assert isinstance(form, ConstantAt | VantHoff)
+    e = form.enthalpy if isinstance(form, VantHoff) else form.activation_energy
+    t1 = mp.mpf(float(form.temperature))
+    return mp.mpf(float(form.constant)) * mp.exp(-mp.mpf(float(e)) / r * (1 / t - 1 / t1))
 
 
 def size_of(problem: SizingProblem, *, hold: str = "pressure") -> mp.mpf:
@@ -28,28 +48,27 @@ def _size_of(problem: SizingProblem, hold: str) -> mp.mpf:
     flows0 = [mp.mpf(float(f)) for f in feed.flows]
     a = problem.key
     inside = [bool(i) for i in feed.in_phase]
-    z_r_t = None
-    if feed.temperature is not None:
-        z_r_t = mp.mpf(feed.compressibility) * R * mp.mpf(feed.temperature)
+    t0 = None if feed.temperature is None else mp.mpf(float(feed.temperature))
+    warm = temperature_of(problem, nu, flows0, inside, hold)
+    z = mp.mpf(feed.compressibility)
     orders = [mp.mpf(float(o)) for o in law.orders]
     floors = None if law.floors is None else [mp.mpf(float(f)) for f in law.floors]
-    k = mp.mpf(float(law.constant.at(feed.temperature)))
 
     def state(x):
         flows = [f + n * flows0[a] * x / -nu[a] for f, n in zip(flows0, nu, strict=True)]
         total = sum(f for f, i in zip(flows, inside, strict=True) if i)
+        t = warm(x)
         if feed.phase == "liquid":
-            v = mp.mpf(feed.liquid_volumetric_flow)
-        else:
-            total0 = sum(f for f, i in zip(flows0, inside, strict=True) if i)
-            v = z_r_t * (total0 if hold == "volume" else total) / mp.mpf(feed.pressure)
-        return flows, total, v
+            return flows, total, mp.mpf(feed.liquid_volumetric_flow), t
+        total0 = sum(f for f, i in zip(flows0, inside, strict=True) if i)
+        held = total0 * t0 if hold == "volume" else total * t
+        return flows, total, z * R * held / mp.mpf(feed.pressure), t
 
-    def driving(flows, total, v):
+    def driving(flows, total, v, t):
         if law.driving == "concentration":
             return [f / v for f in flows]
         if law.driving == "partial-pressure":
-            return [f / v * z_r_t for f in flows]
+            return [f / v * z * R * t for f in flows]
         return [f / total for f in flows]
 
     def one_way(constant, powers, forces):
@@ -61,31 +80,39 @@ def _size_of(problem: SizingProblem, hold: str) -> mp.mpf:
             rate *= (max(force, floors[i]) if held else force) ** power
         return rate
 
+    def denominator(forces, t):
+        product = mp.mpf(1)
+        for factor in law.denominator:
+            total = mp.mpf(factor.leading)
+            for term in factor.terms:
+                powers = [mp.mpf(float(o)) for o in term.orders]
+                total += one_way(constant_at(term.constant, t), powers, forces)
+            product *= total ** mp.mpf(factor.power)
+        return product
+
     def rate_of_key(x):
-        flows, total, v = state(x)
-        forces = driving(flows, total, v)
-        rate = one_way(k, orders, forces)
+        flows, total, v, t = state(x)
+        forces = driving(flows, total, v, t)
+        rate = one_way(constant_at(law.constant, t), orders, forces)
         if isinstance(law.reverse, ByAffinity):
             equilibrium = law.reverse.equilibrium
-            constant = mp.exp(mp.mpf(float(equilibrium.constant.ln_at(feed.temperature))))
-            if hasattr(equilibrium.constant, "value"):
-                constant = mp.mpf(float(equilibrium.constant.value))
+            constant = constant_at(equilibrium.constant, t)
             q = mp.mpf(1)
             for f, n, i in zip(flows, nu, inside, strict=True):
                 if i and n:
                     c = f / v
+                    gas = 1 if t is None else z * R * t
                     activity = {
                         "concentration": c,
-                        "pressure": c * (z_r_t or 1),
-                        "thermodynamic": c * (z_r_t or 1) / mp.mpf(equilibrium.standard_pressure),
+                        "pressure": c * gas,
+                        "thermodynamic": c * gas / mp.mpf(equilibrium.standard_pressure),
                     }[equilibrium.kind]
                     q *= activity**n
             rate *= 1 - (q / constant) ** mp.mpf(law.reverse.exponent)
         elif law.reverse is not None:
-            reverse = mp.mpf(float(law.reverse.constant.at(feed.temperature)))
             powers = [mp.mpf(float(o)) for o in law.reverse.orders]
-            rate -= one_way(reverse, powers, forces)
-        scale = mp.mpf(law.activity) * mp.mpf(law.effectiveness)
+            rate -= one_way(constant_at(law.reverse.constant, t), powers, forces)
+        scale = mp.mpf(law.activity) * mp.mpf(law.effectiveness) / denominator(forces, t)
         return scale * rate * -nu[a] / abs(nu[law.of]), v
 
     def force_of(i, x):
@@ -109,3 +136,28 @@ def _size_of(problem: SizingProblem, hold: str) -> mp.mpf:
                 low, high = (middle, high) if below else (low, middle)
             inner.append(low)
     return mp.quad(integrand, [mp.mpf(0), *sorted(inner, key=abs), target])
+
+
+def temperature_of(problem, nu, flows0, inside, hold):
+    """Return temperature over conversion, of constant heat capacities where it is adiabatic."""
+    feed, known = problem.feed, problem.adiabatic
+    t0 = None if feed.temperature is None else mp.mpf(float(feed.temperature))
+    if known is None:
+        return lambda _: t0
+    properties, heats = known.of_all
+    a = problem.key
+    cps = [mp.mpf(p.heat_capacity.pieces[0].form.coefficients[0]) for p in properties]
+    reference = mp.mpf(float(heats.at[0]))
+    heat = mp.mpf(float(heats.enthalpies[0])) / -nu[a]
+    heat += sum(n * cp for n, cp in zip(nu, cps, strict=True)) / -nu[a] * (t0 - reference)
+    if feed.phase == "gas" and hold == "volume":
+        zr = mp.mpf(feed.compressibility) * R
+        heat -= sum(n for n, i in zip(nu, inside, strict=True) if i) / -nu[a] * zr * t0
+        cps = [cp - zr if i else cp for cp, i in zip(cps, inside, strict=True)]
+
+    def at(x):
+        flows = [f + n * flows0[a] * x / -nu[a] for f, n in zip(flows0, nu, strict=True)]
+        flow = sum(f * cp for f, cp in zip(flows, cps, strict=True))
+        return t0 - flows0[a] * x * heat / flow
+
+    return at
