@@ -198,7 +198,7 @@ def _states_of(
         states.append(
             SteadyState(
                 outlet=outlet_of(problem, feed, flows[:, k], None if t is None else float(t[k])),
-                conversion=(fed - left) / fed,
+                conversion=_share(fed - left, fed),
                 extents=extents[:, k],
                 stable=bool(growth[k] < 0) if known else None,
             )
@@ -262,10 +262,15 @@ def _state(problem: ReactorProblem, feed: Stream, found: RestStates, k: int) -> 
     stable = int(found.stable[k])
     return SteadyState(
         outlet=outlet_of(problem, feed, found.flows[k], t),
-        conversion=float(-nu[key] * extent / feed.flows[key]),
+        conversion=_share(-float(nu[key]) * extent, float(feed.flows[key])),
         extents=np.array([extent]),
         stable=None if stable == 0 else stable > 0,
     )
+
+
+def _share(gone: float, fed: float) -> float:
+    """Return a conversion; of a key that is all gone before, none."""
+    return gone / fed if fed else 0.0
 
 
 def outlet_of(
