@@ -21,7 +21,7 @@ from typing import Protocol, TypeAlias
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray, IntArray
-from core.numerics.intervals import Enclosure
+from core.numerics.intervals import Enclosure, outward
 from core.numerics.roots import find_root
 
 MOST_BOXES = 20_000
@@ -184,29 +184,54 @@ def _settle(
     settled: list[_Boxes] = [waiting.take(np.zeros(0, dtype=np.intp))]
     while len(waiting):
         used += np.bincount(waiting.case, minlength=n)
+        halves: list[_Boxes] = []
         for first in range(0, len(waiting), _BLOCK):
             some = slice(first, first + _BLOCK)
-            waiting.found[some] = _judged(
-                problem.over(
-                    waiting.lower[some],
-                    waiting.upper[some],
-                    waiting.at_lower[:, some],
-                    waiting.at_upper[:, some],
-                    waiting.case[some],
-                ),
-                len(waiting.case[some]),
-            )
-        scale = np.maximum(1.0, np.abs(waiting.lower))
-        narrow = waiting.upper - waiting.lower <= _NARROWEST * scale
-        spent = used[waiting.case] >= most_boxes
-        split = waiting.found == _SPLIT
-        waiting.found[split & narrow] = _STUCK
-        waiting.found[split & spent & ~narrow] = _OPEN
-        complete[waiting.case[waiting.found == _OPEN]] = False
-        more = waiting.found == _SPLIT
-        settled.append(waiting.take(~more))
-        waiting = _halved(problem, waiting.take(more))
+            done, more = _looked_at(problem, waiting, some, used, most_boxes)
+            complete[done.case[done.found == _OPEN]] = False
+            settled.append(done)
+            halves.append(more)
+        waiting = _Boxes.joined(halves)
     return used, _Boxes.joined(settled), complete
+
+
+def _looked_at(
+    problem: Enclosed, boxes: _Boxes, some: slice, used: IntArray, most_boxes: int
+) -> tuple[_Boxes, _Boxes]:
+    """Return the boxes that are settled, and the halves of the others."""
+    waiting = boxes.take(np.arange(len(boxes))[some])
+    enclosures = problem.over(
+        waiting.lower, waiting.upper, waiting.at_lower, waiting.at_upper, waiting.case
+    )
+    waiting.found = _judged(enclosures, len(waiting))
+    scale = np.maximum(1.0, np.abs(waiting.lower))
+    narrow = waiting.upper - waiting.lower <= _NARROWEST * scale
+    split = waiting.found == _SPLIT
+    waiting.found[split & narrow] = _STUCK
+    rows: IntArray = np.flatnonzero(split & ~narrow)
+    undecided = waiting.take(rows)
+    if not rows.size:
+        return waiting, undecided
+    middle = undecided.lower + 0.5 * (undecided.upper - undecided.lower)
+    at = problem.at(middle, undecided.case, 0.5 * (undecided.at_lower + undecided.at_upper))
+    # What it is in the middle and how far its slope can take it, both ways.
+    half = np.nextafter(np.maximum(middle - undecided.lower, undecided.upper - middle), np.inf)
+    for whole, point in zip(
+        enclosures, problem.over(middle, middle, at, at, undecided.case), strict=True
+    ):
+        low, high = (np.broadcast_to(v, split.shape)[rows] for v in whole.slope)
+        reach = np.nextafter(half * np.maximum(np.abs(low), np.abs(high)), np.inf)
+        above, below = outward(point.lower - reach, point.upper + reach)
+        undecided.found = np.where(above > 0, _ABOVE, undecided.found)
+        undecided.found = np.where(below < 0, _BELOW, undecided.found)
+    spent = used[undecided.case] >= most_boxes
+    undecided.found = np.where((undecided.found == _SPLIT) & spent, _OPEN, undecided.found)
+    waiting.found[rows] = undecided.found
+    more = undecided.found == _SPLIT
+    rest, at, middle = undecided.take(more), at[:, more], middle[more]
+    one = _Boxes(rest.lower, middle, rest.at_lower, at, rest.case, rest.found)
+    two = _Boxes(middle, rest.upper, at, rest.at_upper, rest.case, rest.found)
+    return waiting.take(waiting.found != _SPLIT), _Boxes.joined([one, two])
 
 
 def _judged(enclosures: Sequence[Enclosure], m: int) -> IntArray:
@@ -219,16 +244,6 @@ def _judged(enclosures: Sequence[Enclosure], m: int) -> IntArray:
         found = np.where(each.lower > 0, _ABOVE, found)
         found = np.where(each.upper < 0, _BELOW, found)
     return found
-
-
-def _halved(problem: Enclosed, boxes: _Boxes) -> _Boxes:
-    if not len(boxes):
-        return boxes
-    middle = boxes.lower + 0.5 * (boxes.upper - boxes.lower)
-    at = problem.at(middle, boxes.case, 0.5 * (boxes.at_lower + boxes.at_upper))
-    one = _Boxes(boxes.lower, middle, boxes.at_lower, at, boxes.case, boxes.found)
-    two = _Boxes(middle, boxes.upper, at, boxes.at_upper, boxes.case, boxes.found)
-    return _Boxes.joined([one, two])
 
 
 def _runs(boxes: _Boxes) -> _Boxes:
@@ -353,8 +368,12 @@ def _sampled(problem: Enclosed, runs: _Boxes) -> list[_Root]:
             return problem.value(y, np.full(len(rows), k))
 
         x = np.linspace(float(runs.lower[i]), float(runs.upper[i]), _SAMPLES)
-        signs = np.sign(value(x, np.arange(_SAMPLES)))
-        for j in np.flatnonzero(signs[1:] * signs[:-1] < 0).tolist():
-            root = find_root(value, x[j : j + 1], x[j + 1 : j + 2])
-            found.append((float(root[0]), k, int(signs[j + 1]), False))
+        case: IntArray = np.full(_SAMPLES, k)
+        signs = _sign_at(problem, x, problem.at(x, case, None), case)
+        # Where rounding decides there is no sign to count.
+        known: IntArray = np.flatnonzero(signs)
+        changes: IntArray = np.flatnonzero(signs[known[1:]] != signs[known[:-1]])
+        for one, two in zip(known[changes].tolist(), known[changes + 1].tolist(), strict=True):
+            root = find_root(value, x[one : one + 1], x[two : two + 1])
+            found.append((float(root[0]), k, int(signs[two]), False))
     return found

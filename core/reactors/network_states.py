@@ -34,6 +34,9 @@ ACCEPTED = 1e-11
 """Backward error."""
 _TRACE = 1e-13
 """Of all that is fed; how far a substance is off counts against no less."""
+_UNBALANCED = 1e-13
+"""Of all that is fed; how far elements may be off."""
+_POLISHING = 4
 _FLOOR = 0.02  # of a flow that one step may leave
 _KELVINS = 100.0  # what counts as much as all that is fed, in norms
 _LARGEST_CHANGE = 0.6  # of the temperature in one step, in these
@@ -385,12 +388,12 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
     n = balance.size
     y = network.start.copy()
     errors, stage = np.full(n, np.inf), np.zeros(n, dtype=np.intp)
-    at_volume = np.zeros(n)
+    own = np.zeros(n)
 
     def attempt(method: _Method, starts: FloatArray, rows: IntArray, number: int) -> FloatArray:
         if not rows.size:
             return starts
-        found, error = method(network, starts, at_volume[rows], rows)
+        found, error = method(network, starts, own[rows], rows)
         good = (error <= ACCEPTED) & (errors[rows] > ACCEPTED)
         y[rows[good]], errors[rows[good]], stage[rows[good]] = found[good], error[good], number
         return found
@@ -414,11 +417,11 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
     if branch:
         for k in np.flatnonzero(errors > ACCEPTED).tolist():
             one = follow(network, k, farthest=0.0)
-            states = crossings(network, k, one, lambda ln_v, _y: ln_v, 0.0)
+            states = at_volume(network, k, one)
             if len(states):
-                one_case: IntArray = np.array([k])
-                y[k], stage[k] = states[0, :-1], 4
-                errors[k] = network.evaluate(y[[k]], np.zeros(1), one_case).error[0]
+                case: IntArray = np.array([k])
+                y[k], stage[k] = states[0], 4
+                errors[k] = network.evaluate(y[[k]], np.zeros(1), case).error[0]
     rows = np.arange(n)
     y, errors = _polished(network, y, errors, rows)
     return Found(network.flows(y, rows), network.temperature(y), errors <= ACCEPTED, errors, stage)
@@ -466,36 +469,79 @@ def more_states(network: Network, case: int, starts: int, seed: int = 0) -> Floa
 def _polished(
     network: Network, y: FloatArray, errors: FloatArray, case: IntArray
 ) -> tuple[FloatArray, FloatArray]:
-    """Return states after a last Newton step in which elements are balanced to rounding.
+    """Return states after last Newton steps in which elements are balanced to rounding.
 
     The balances of as many substances as there are independent reactions stay as they
     are; the others are replaced by combinations without a rate, which are linear.
     """
-    rows: IntArray = np.flatnonzero(errors <= ACCEPTED)
-    if not rows.size:
-        return y, errors
-    y, errors, own, s = y.copy(), errors.copy(), case[rows], network.substances
+    y, errors = y.copy(), errors.copy()
+    good: IntArray = np.flatnonzero(errors <= ACCEPTED)
     turn, kept = _rotation(network.balance.nu)
-    best, error = y[rows].copy(), errors[rows].copy()
-    current = best.copy()
-    zeros = np.zeros(len(rows))
+    everywhere = np.broadcast_to(turn[:kept], (len(good), kept, network.substances))
+    left = _balanced(network, y, errors, case, good, everywhere, turn[kept:])
+    if left.size:
+        # Scarce substances keep their own balances, which mixed with others lose digits.
+        own = np.zeros((len(left), kept, network.substances))
+        for rows, scarce in zip(own, _scarce(network, y[left], case[left], kept), strict=True):
+            rows[np.arange(kept), scarce] = 1.0
+        _balanced(network, y, errors, case, left, own, turn[kept:])
+    return y, errors
+
+
+def _balanced(
+    network: Network,
+    y: FloatArray,
+    errors: FloatArray,
+    case: IntArray,
+    rows: IntArray,
+    kept: FloatArray,
+    invariants: FloatArray,
+) -> IntArray:
+    """Replace states in place where that balances elements; return the rows where it does not.
+
+    ``kept`` of shape (m, rank, S) are the combinations of balances that stay.
+    """
+    if not rows.size:
+        return rows
+    own, s, rank = case[rows], network.substances, kept.shape[1]
+    current, zeros = y[rows].copy(), np.zeros(len(rows))
+    done = np.zeros(len(rows), dtype=bool)
     entering = network.balance.feed[own] / network.fed[own, None]
-    for _ in range(3):
+    for _ in range(_POLISHING):
         at = network.evaluate(current, zeros, own)
         residual, jacobian = at.residual.copy(), at.jacobian.copy()
-        # Rows without a rate: invariants of the reactions.
-        residual[:, kept:s] = (entering - current[:, :s]) @ turn[kept:].T
-        jacobian[:, kept:s] = 0.0
-        jacobian[:, kept:s, :s] = -turn[kept:]
-        residual[:, :kept] = at.residual[:, :s] @ turn[:kept].T
-        jacobian[:, :kept] = np.einsum("ki,mij->mkj", turn[:kept], at.jacobian[:, :s])
-        step = _solved(jacobian, -residual)
-        current = network.stepped(current, step, own)
+        residual[:, rank:s] = (entering - current[:, :s]) @ invariants.T
+        jacobian[:, rank:s] = 0.0
+        jacobian[:, rank:s, :s] = -invariants
+        residual[:, :rank] = np.einsum("mki,mi->mk", kept, at.residual[:, :s])
+        jacobian[:, :rank] = np.einsum("mki,mij->mkj", kept, at.jacobian[:, :s])
+        current = network.stepped(current, _solved(jacobian, -residual), own)
         now = network.evaluate(current, zeros, own).error
-        good = now <= ACCEPTED
-        best[good], error[good] = current[good], now[good]
-    y[rows], errors[rows] = best, error
-    return y, errors
+        off = np.abs((entering - current[:, :s]) @ invariants.T).max(axis=1, initial=0.0)
+        good = (now <= ACCEPTED) & (off <= _UNBALANCED)
+        y[rows[good]], errors[rows[good]] = current[good], now[good]
+        done |= good
+    return rows[~done]
+
+
+def _scarce(network: Network, y: FloatArray, case: IntArray, rank: int) -> list[list[int]]:
+    """Return the scarcest substances whose balances are independent, of each case."""
+    scale = network.evaluate(y, np.zeros(len(y)), case).scale[:, : network.substances]
+    nu = network.balance.nu
+    chosen = []
+    for each in scale:
+        basis: list[FloatArray] = []
+        places: list[int] = []
+        for i in np.argsort(each, kind="stable").tolist():
+            column = nu[:, i].astype(float)
+            for one in basis:
+                column = column - (column @ one) * one
+            length = float(np.sqrt(column @ column))
+            if length > 1e-8 and len(places) < rank:
+                basis.append(column / length)
+                places.append(i)
+        chosen.append(places)
+    return chosen
 
 
 def _rotation(nu: FloatArray) -> tuple[FloatArray, int]:
@@ -618,6 +664,15 @@ def _corrected(
             return None, trial
         z = new
     return None, 9
+
+
+def at_volume(network: Network, case: int, branch: Branch) -> FloatArray:
+    """Return where a branch passes the volume of its case, shape (k, n), scaled."""
+    points = crossings(network, case, branch, lambda ln_v, _y: ln_v, 0.0)
+    rows: IntArray = np.full(len(points), case)
+    # Along the branch the volume is met to a few digits less than at a volume that is held.
+    y, errors = newton(network, points[:, :-1], np.zeros(len(points)), rows)
+    return y[errors <= ACCEPTED]
 
 
 def crossings(

@@ -20,6 +20,7 @@ from core.numerics.straight_line import Number
 from core.reactors.balances import Balances, Basis
 from core.reactors.network_states import (
     Network,
+    at_volume,
     crossings,
     distinct,
     follow,
@@ -170,7 +171,7 @@ def _searched(
     network = Network(balance)
     one = solve_network(balance, branch=False)
     branch = follow(network, 0)
-    found = [crossings(network, 0, branch, lambda ln_v, _y: ln_v, 0.0)[:, :-1]]
+    found = [at_volume(network, 0, branch)]
     if one.accepted[0]:
         found.append(network.scaled(one.flows, one.temperature))
     found.append(more_states(network, 0, _MORE_STARTS))
@@ -197,7 +198,7 @@ def _states_of(
         states.append(
             SteadyState(
                 outlet=outlet_of(problem, feed, flows[:, k], None if t is None else float(t[k])),
-                conversion=(fed - left) / fed,
+                conversion=_share(fed - left, fed),
                 extents=extents[:, k],
                 stable=bool(growth[k] < 0) if known else None,
             )
@@ -261,10 +262,15 @@ def _state(problem: ReactorProblem, feed: Stream, found: RestStates, k: int) -> 
     stable = int(found.stable[k])
     return SteadyState(
         outlet=outlet_of(problem, feed, found.flows[k], t),
-        conversion=float(-nu[key] * extent / feed.flows[key]),
+        conversion=_share(-float(nu[key]) * extent, float(feed.flows[key])),
         extents=np.array([extent]),
         stable=None if stable == 0 else stable > 0,
     )
+
+
+def _share(gone: float, fed: float) -> float:
+    """Return a conversion; of a key that is all gone before, none."""
+    return gone / fed if fed else 0.0
 
 
 def outlet_of(

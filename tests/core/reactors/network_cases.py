@@ -8,6 +8,7 @@ one enthalpy of each substance, so that no loop of reactions makes heat of nothi
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -54,7 +55,45 @@ def draw_network(rng: np.random.Generator) -> Network:
                     return Network(table, masses)
 
 
-def draw(rng: np.random.Generator, cases: int, *, isothermal: bool = False) -> TankBalance:
+@dataclass(frozen=True, eq=False)
+class Drawn:
+    """N tanks, and their rates and heat by plain formulas.
+
+    Attributes
+    ----------
+    balance : TankBalance
+    rates : callable
+        Of flows, shape (S, N), and temperatures, shape (N,): rates each way, two of shape (R, N).
+    warmth : callable or None
+        Of flows, rates of extent, mol/s, and temperatures: the heat balance's terms.
+    """
+
+    balance: TankBalance
+    rates: Callable[[FloatArray, FloatArray], tuple[FloatArray, FloatArray]]
+    temperature: FloatArray
+    terms: Callable[[FloatArray, FloatArray], list[FloatArray]] | None
+
+
+def residual(drawn: Drawn, flows: FloatArray, temperature: FloatArray | None) -> FloatArray:
+    """Return the largest imbalance of each case over what enters, leaves and is turned over."""
+    balance = drawn.balance
+    t = drawn.temperature if temperature is None else temperature
+    forward, reverse = drawn.rates(flows, t)
+    net, both = (forward - reverse) * balance.volume, (forward + reverse) * balance.volume
+    nu, feed = balance.nu, balance.feed.T
+    off = np.abs(feed + nu.T @ net - flows)
+    size = feed + flows + np.abs(nu.T) @ both
+    # What is next to nothing counts by what is fed.
+    worst = (off / np.maximum(size, 1e-12 * feed.sum(axis=0))).max(axis=0)
+    if drawn.terms is not None:
+        terms = np.array(drawn.terms(net, t))
+        # A temperature is known to its own rounding, even where hardly any heat moves.
+        gross = np.abs(np.array(drawn.terms(both, t))).sum(axis=0) + SOLVENT * VOLUMETRIC * t
+        worst = np.maximum(worst, np.abs(terms.sum(axis=0)) / gross)
+    return worst
+
+
+def draw(rng: np.random.Generator, cases: int, *, isothermal: bool = False) -> Drawn:
     """Return N tanks with the same reactions and numbers of their own."""
     network = draw_network(rng)
     nu = network.nu
@@ -78,41 +117,52 @@ def draw(rng: np.random.Generator, cases: int, *, isothermal: bool = False) -> T
     reversible = rng.random(r) < 0.5
     ln_k_eq = rng.uniform(-3.0, 6.0, (r, n))
 
+    def each_way(c: list[Number], t: Number, j: int) -> tuple[Number, Number]:
+        inverse = (1.0 / t - 1.0 / middle) / GAS_CONSTANT
+        constant = np.exp(np.log(k[j]) - energy[j] * inverse)
+        forward: Number = constant
+        for i in np.flatnonzero(order[j]).tolist():
+            forward = forward * c[i] ** float(order[j, i])
+        if not reversible[j]:
+            return forward, 0.0
+        reverse: Number = constant * np.exp(dh[j] * inverse - ln_k_eq[j])
+        for i in np.flatnonzero(back[j]).tolist():
+            reverse = reverse * c[i] ** float(back[j, i])
+        return forward, reverse * total ** float(order[j].sum() - back[j].sum())
+
     def rates(_x: Number, *y: Number) -> list[Number]:
         c = [f / VOLUMETRIC for f in y[:s]]
         t: Number = y[s] if not isothermal else t0
-        found = []
-        for j in range(r):
-            arrhenius = np.exp(np.log(k[j]) - energy[j] / GAS_CONSTANT * (1.0 / t - 1.0 / middle))
-            forward: Number = 1.0
-            for i in np.flatnonzero(order[j]).tolist():
-                forward = forward * c[i] ** order[j, i]
-            if reversible[j]:
-                ln_k = ln_k_eq[j] - dh[j] / GAS_CONSTANT * (1.0 / t - 1.0 / middle)
-                reverse: Number = 1.0
-                for i in np.flatnonzero(back[j]).tolist():
-                    reverse = reverse * c[i] ** back[j, i]
-                standard = total ** float(order[j].sum() - back[j].sum())
-                forward = forward - reverse * standard / np.exp(ln_k)
-            found.append(arrhenius * forward)
-        return found
+        ways = [each_way(c, t, j) for j in range(r)]
+        return [forward - reverse for forward, reverse in ways]
 
-    heat = None
+    def plain(flows: FloatArray, t: FloatArray) -> tuple[FloatArray, FloatArray]:
+        ways = [each_way(list(flows / VOLUMETRIC), t, j) for j in range(r)]
+        forward, reverse = (
+            np.array([np.broadcast_to(w, n) for w in one]) for one in zip(*ways, strict=True)
+        )
+        return forward, reverse
+
+    heat, terms = None, None
     if not isothermal:
         # The solvent is what is warmed; it stands in the first substance's capacity.
-        cp = SOLVENT * VOLUMETRIC / feed.sum(axis=1)
         cooled = rng.random(n) < 0.5
         ua = np.where(cooled, 10 ** rng.uniform(1.5, 4.5, n), 0.0)
         masses = network.masses
-        each = cp * feed.sum(axis=1) / (feed @ masses)
+        each = SOLVENT * VOLUMETRIC / (feed @ masses)
+        volume, cold = space_time * VOLUMETRIC, rng.uniform(280.0, 320.0, n)
 
         def sensible(t: Number) -> list[Number]:
             return [(t - 298.15) * (each * float(m)) for m in masses]
 
-        heat = TankHeat(
-            sensible, dh, t0, ua, rng.uniform(280.0, 320.0, n), coldest=150.0, hottest=3000.0
-        )
-    return TankBalance(
+        heat = TankHeat(sensible, dh, t0, ua, cold, coldest=150.0, hottest=3000.0)
+
+        def terms(extents: FloatArray, t: FloatArray) -> list[FloatArray]:
+            # Mass is kept, so that heats of reaction do not change with temperature.
+            carried = SOLVENT * VOLUMETRIC * (t - t0)
+            return [carried, ua * volume * (t - cold), *(extents * dh)]
+
+    balance = TankBalance(
         nu=nu,
         feed=feed,
         volume=space_time * VOLUMETRIC,
@@ -120,3 +170,4 @@ def draw(rng: np.random.Generator, cases: int, *, isothermal: bool = False) -> T
         space_time=space_time,
         heat=heat,
     )
+    return Drawn(balance, plain, t0, terms)
