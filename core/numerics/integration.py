@@ -277,11 +277,12 @@ class _Run:
         return March(x, y, float(x[-1]), y[-1], (), False, self.evaluations)
 
     def _counted(self) -> Callable[[float, FloatArray], Sequence[float]]:
-        of, most = self.case.slopes_or_none, self.case.most
+        f, most = self.case.f, self.case.most
         begun = self.evaluations
         limit = begun + most // 2
 
         def slopes(x: float, y: FloatArray) -> Sequence[float]:
+            # As _Case.slopes_or_none, written out: calls are what it costs.
             nonlocal limit
             self.evaluations += 1
             if self.evaluations > limit:
@@ -289,8 +290,12 @@ class _Run:
                 if limit == begun + most:
                     raise _Spent
                 limit = begun + most
-            found = of(x, y.tolist())
-            if found is None:
+            try:
+                found = f(x, y.tolist())
+            except (ValueError, ArithmeticError):
+                raise _GivenUp from None
+            total = sum(found)
+            if total - total != 0.0 or total.__class__ is complex:
                 raise _GivenUp
             return found
 
@@ -457,9 +462,15 @@ class _Walk:
 def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Walk:
     n = len(y0)
 
-    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> Sequence[float]:
-        found = case.slopes_or_none(float(at[0]), [float(row[0]) for row in y])
-        return [np.nan] * n if found is None else found
+    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> list[FloatArray]:
+        # More than one where derivatives are taken by differences.
+        out = np.empty((n, len(at)))
+        for lane, (here, *state) in enumerate(
+            zip(at.tolist(), *(row.tolist() for row in y), strict=True)
+        ):
+            found = case.slopes_or_none(here, state)
+            out[:, lane] = np.nan if found is None else found
+        return list(out)
 
     def of(event: int) -> CaseEvent:
         def value(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> FloatArray:
