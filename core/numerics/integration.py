@@ -10,6 +10,7 @@ finds where events are, once it is known about where to look.
 
 from __future__ import annotations
 
+import math
 import warnings
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
@@ -218,7 +219,7 @@ class _Case:
             return self.carefully(run.evaluations)
         except _Spent:
             gained = abs(run.furthest - run.halfway)
-            stuck = gained <= _NO_WAY * abs(run.furthest)
+            stuck = gained <= _NO_WAY * abs(run.furthest) and not run.looking
             code = "march-not-finished" if stuck else "compute-budget"
             end = float(self.x[-1])
             raise Refused(
@@ -227,7 +228,7 @@ class _Case:
 
     def carefully(self, evaluations: int) -> March:
         """March by the methods that can refuse a trial."""
-        walk = _walked(self, self.x, self.y0, np.zeros(len(self.events), dtype=np.intp))
+        walk = _walked(self, self.x, self.y0)
         return March(
             self.x[: len(walk.y)],
             walk.y,
@@ -251,9 +252,10 @@ class _Case:
     def value(self, event: int, x: float, y: list[float]) -> float:
         """Return the value of an event, not a number where it has none."""
         try:
-            return float(self.events[event].value(x, y))
+            value = self.events[event].value(x, y)
         except (ValueError, ArithmeticError):
-            return float("nan")
+            return math.nan
+        return math.nan if isinstance(value, complex) else float(value)
 
 
 class _Run:
@@ -263,6 +265,7 @@ class _Run:
         self.case = case
         self.onward = 1.0 if case.x[-1] > case.x[0] else -1.0
         self.evaluations = 0
+        self.looking = False  # for events, which is not to be stuck
         self.furthest = self.halfway = float(case.x[0])
         self.chain: list[tuple[float, list[float]]] = []
         self.judged = 0
@@ -347,10 +350,15 @@ class _Run:
         grid = self.onward * np.unique(self.onward * grid)
         y = self._lsoda(grid, self._counted()) if len(grid) > 1 else self.case.y0[None]
         crossings: list[Crossing] = []
+        walked = 0
         for (begin, end), side in zip(spans, sides, strict=True):
             row = int(np.flatnonzero(grid == begin)[0])
             walk = _walked(self.case, np.array([begin, end]), y[row], side)
             self.evaluations += walk.evaluations
+            walked += walk.evaluations
+            if _DEARER * walked > self.case.most:
+                self.looking, self.furthest = True, walk.end
+                raise _Spent
             crossings.extend(walk.crossings)
             if walk.terminated:
                 before = x[self.onward * (walk.end - x) >= 0]
@@ -358,9 +366,8 @@ class _Run:
                 states = y[np.minimum(rows, len(grid) - 1)]
                 late = self.onward * (before - begin) > 0
                 for i in np.flatnonzero(late):
-                    states[i] = _walked(
-                        replace(self.case, events=()), np.array([begin, before[i]]), y[row], side
-                    ).y_end
+                    stretch = np.array([begin, before[i]])
+                    states[i] = _walked(replace(self.case, events=()), stretch, y[row]).y_end
                 return March(
                     before, states, walk.end, walk.y_end, tuple(crossings), True, self.evaluations
                 )
@@ -459,7 +466,8 @@ class _Walk:
     evaluations: int
 
 
-def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Walk:
+def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None = None) -> _Walk:
+    """March a stretch; the sides of the values at its start may be ``known``."""
     n = len(y0)
 
     def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> list[FloatArray]:
@@ -479,7 +487,7 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Wal
         return CaseEvent(value, case.events[event].direction)
 
     events = [of(e) for e in range(len(case.events))]
-    sides = np.array(sides, dtype=np.intp)
+    sides = np.zeros(len(events), dtype=np.intp) if known is None else known.copy()
     crossings: list[Crossing] = []
     rows: list[FloatArray] = [y0]
     evaluations = 0
