@@ -21,7 +21,9 @@ from scipy.integrate import ODEintWarning, odeint
 
 from core.arrays import FloatArray, IntArray
 from core.errors import Refused, Subject
+from core.numerics import explicit_step
 from core.numerics.batched import CaseEvent, march_cases, unfinished
+from core.numerics.case_slopes import CaseFunction, Slopes, Tolerance
 
 Function: TypeAlias = Callable[[float, list[float]], Sequence[float]]
 """``f(x, y)``: a float and n floats, to n slopes. Raises what arithmetic on floats raises, or
@@ -33,6 +35,8 @@ MOST_EVALUATIONS = 200_000
 """Of the right-hand side: less than a second for a dozen components."""
 
 _TIGHTER = 0.1
+_CORRECTIONS = 6
+_EPS = float(np.finfo(float).eps)
 _DEARER = 8  # an evaluation, where arrays of one case go around it
 _STEPS = 2**30  # of LSODA between two abscissae: it is evaluations that are counted
 _NO_WAY = 1e-6  # of where it is: gained with half of the evaluations, it does not get on
@@ -258,6 +262,21 @@ class _Case:
         return math.nan if isinstance(value, complex) else float(value)
 
 
+@dataclass(frozen=True, eq=False)
+class _Span:
+    """A stretch to look at closely, and the sides on which the values are at its begin.
+
+    ``event`` is the one that changes sides there where nothing else does, else -1; ``passes`` its
+    values at both ends, about.
+    """
+
+    begin: float
+    end: float
+    sides: IntArray
+    event: int
+    passes: FloatArray
+
+
 class _Run:
     """LSODA on one case: its evaluations are counted, and kept where events are sought."""
 
@@ -339,21 +358,24 @@ class _Run:
             self.chain.append((float(x[-1]), y[-1].tolist()))
         except _Passed:
             passed = True
-        spans, sides = self._spans()
+        spans = self._spans()
         if not spans:
             if passed:  # by less than the tolerance
                 raise _GivenUp
             return self._whole(y)
-        last = spans[-1][1] if passed else x[-1]
-        begins = np.array([span[0] for span in spans])
+        last = spans[-1].end if passed else x[-1]
+        begins = np.array([span.begin for span in spans])
         grid = np.concatenate([x[self.onward * (last - x) >= 0], begins])
         grid = self.onward * np.unique(self.onward * grid)
         y = self._lsoda(grid, self._counted()) if len(grid) > 1 else self.case.y0[None]
         crossings: list[Crossing] = []
         walked = 0
-        for (begin, end), side in zip(spans, sides, strict=True):
+        for span in spans:
+            begin = span.begin
             row = int(np.flatnonzero(grid == begin)[0])
-            walk = _walked(self.case, np.array([begin, end]), y[row], side)
+            walk = _met(self.case, span, y[row])
+            if walk is None:
+                walk = _walked(self.case, np.array([begin, span.end]), y[row], span.sides)
             self.evaluations += walk.evaluations
             walked += walk.evaluations
             if _DEARER * walked > self.case.most:
@@ -405,14 +427,15 @@ class _Run:
 
         return slopes
 
-    def _spans(self) -> tuple[list[tuple[float, float]], list[IntArray]]:
-        """Return where to look closely, and the sides on which the values are there."""
+    def _spans(self) -> list[_Span]:
+        """Return where to look closely."""
         case = self.case
         at = np.array([x for x, _ in self.chain])
         values = np.array(
             [[case.value(e, x, y) for x, y in self.chain] for e in range(len(case.events))]
         )
-        look = np.zeros(len(at) - 1, dtype=bool)
+        look = np.zeros((len(case.events), len(at) - 1), dtype=bool)
+        closely = np.zeros(len(at) - 1, dtype=bool)
         side = np.zeros((len(case.events), len(at)), dtype=np.intp)
         for e, event in enumerate(case.events):
             signs = np.nan_to_num(np.sign(values[e])).astype(np.intp)
@@ -423,19 +446,22 @@ class _Run:
             changed = (before != 0) & (after != before) & ~np.isnan(values[e, 1:])
             if event.direction:
                 changed &= before == -event.direction
-            look |= changed
+            look[e] = changed
             dips = _dips(at, values[e] * side[e], event.direction * side[e])
-            look[:-1] |= dips
-            look[1:] |= dips
-        spans: list[tuple[float, float]] = []
-        sides: list[IntArray] = []
-        for k in np.flatnonzero(look).tolist():
-            if spans and spans[-1][1] == at[k]:
-                spans[-1] = (spans[-1][0], float(at[k + 1]))
-            else:
-                spans.append((float(at[k]), float(at[k + 1])))
-                sides.append(side[:, k])
-        return spans, sides
+            closely[:-1] |= dips
+            closely[1:] |= dips
+        spans: list[_Span] = []
+        for k in np.flatnonzero(look.any(axis=0) | closely).tolist():
+            begin, end = float(at[k]), float(at[k + 1])
+            if spans and spans[-1].end == begin:
+                spans[-1] = replace(spans[-1], end=end, event=-1)
+                continue
+            which = np.flatnonzero(look[:, k])
+            alone = len(which) == 1 and not closely[k]
+            only = int(which[0]) if alone else -1
+            passes = values[only, k : k + 2] if alone else np.zeros(2)
+            spans.append(_Span(begin, end, side[:, k], only, passes))
+        return spans
 
 
 def _dips(x: FloatArray, size: FloatArray, towards: IntArray) -> np.ndarray:
@@ -466,19 +492,46 @@ class _Walk:
     evaluations: int
 
 
+def _met(case: _Case, span: _Span, y0: FloatArray) -> _Walk | None:
+    """Return where the only event of a step of LSODA is; None where that needs a closer look.
+
+    Newton's method on the length of one step of order eight, which is longer by nature than one
+    of LSODA's.
+    """
+    event = span.event
+    before, after = span.passes
+    if event < 0 or not before * after < 0:
+        return None
+    f = Slopes(_on_arrays(case, len(y0)), np.zeros(1, dtype=np.intp))
+    x, y = np.array([span.begin]), y0[:, None]
+    tolerance = Tolerance(case.rtol, case.atol[:, None])
+    rise = (after - before) / (span.end - span.begin)
+    h, evaluations = -before / rise, 1
+    with np.errstate(all="ignore"):
+        start = f(x, y)
+        for _ in range(_CORRECTIONS):
+            step = explicit_step.attempt(f, x, y, start, np.array([h]), tolerance)
+            evaluations += explicit_step.EVALUATIONS
+            if not step.error[0] <= 1.0:
+                return None
+            at, state = span.begin + h, step.y[:, 0]
+            value = case.value(event, at, state.tolist())
+            ahead = 1e-6 * (span.end - span.begin)
+            further = (state + ahead * step.slopes[:, 0]).tolist()
+            slope = (case.value(event, at + ahead, further) - value) / ahead
+            move = value / slope
+            if not 0.0 <= (h - move) / (span.end - span.begin) <= 1.0 or slope * rise <= 0:
+                return None
+            if abs(move) <= 4.0 * _EPS * abs(at) or abs(move) <= 1e-13 * abs(h):
+                crossing = Crossing(event, at, state)
+                ends = case.events[event].terminal
+                return _Walk(y0[None], at, state, (crossing,), ends, evaluations)
+            h -= move
+    return None
+
+
 def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None = None) -> _Walk:
     """March a stretch; the sides of the values at its start may be ``known``."""
-    n = len(y0)
-
-    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> list[FloatArray]:
-        # More than one where derivatives are taken by differences.
-        out = np.empty((n, len(at)))
-        for lane, (here, *state) in enumerate(
-            zip(at.tolist(), *(row.tolist() for row in y), strict=True)
-        ):
-            found = case.slopes_or_none(here, state)
-            out[:, lane] = np.nan if found is None else found
-        return list(out)
 
     def of(event: int) -> CaseEvent:
         def value(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> FloatArray:
@@ -486,6 +539,7 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None =
 
         return CaseEvent(value, case.events[event].direction)
 
+    slopes = _on_arrays(case, len(y0))
     events = [of(e) for e in range(len(case.events))]
     sides = np.zeros(len(events), dtype=np.intp) if known is None else known.copy()
     crossings: list[Crossing] = []
@@ -522,6 +576,22 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None =
         sides[event] = found.rising[0]
         if not len(ahead):
             return _Walk(np.array(rows), at, state, tuple(crossings), False, evaluations)
+
+
+def _on_arrays(case: _Case, n: int) -> CaseFunction:
+    """Return the right-hand side as the methods for many cases ask for it."""
+
+    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> list[FloatArray]:
+        # More than one where derivatives are taken by differences.
+        out = np.empty((n, len(at)))
+        for lane, (here, *state) in enumerate(
+            zip(at.tolist(), *(row.tolist() for row in y), strict=True)
+        ):
+            found = case.slopes_or_none(here, state)
+            out[:, lane] = np.nan if found is None else found
+        return list(out)
+
+    return slopes
 
 
 def _sides_beyond(case: _Case, crossing: Crossing, sides: IntArray) -> IntArray:
