@@ -48,6 +48,7 @@ _FAR = 690.0  # logit beyond which the rest of the way is no normal number
 # may be several.
 _ONE: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 17))
 _SCAN: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 257))
+_ALMOST = -600.0  # ln of what is left where a limit is looked for
 _SCAN_BLOCK = 500  # cases scanned at a time
 
 
@@ -338,6 +339,8 @@ class ReactionPath:
         along, net = self.ln_rate(place)
         with np.errstate(over="ignore", invalid="ignore"):
             rate: FloatArray = np.broadcast_to(np.exp(along) * net, place.left.shape)
+        if self.hindrances and np.isnan(rate).any():
+            rate = self._where_all_vanishes(place, rate)
         if not np.isfinite(rate).all():
             raise refuse(
                 "rate-not-finite",
@@ -346,6 +349,15 @@ class ReactionPath:
                 "its orders and their units",
             )
         return rate
+
+    def _where_all_vanishes(self, place: Place, rate: FloatArray) -> FloatArray:
+        """Return rates with their limit at the end, where a denominator vanishes with them."""
+        at_end = np.isnan(rate) & (place.left == 0)
+        almost = np.where(at_end, _ALMOST, place.ln_left)
+        along, net = self.ln_rate(Place(place.case, np.exp(almost), place.gone, almost))
+        fades = self.order_at_exhaustion()[place.case, None] > 0
+        limit = np.where(fades, 0.0, np.exp(along) * net)
+        return np.where(at_end, limit, rate)
 
     def ln_above_floor(self, factor: FlooredFactor, place: Place) -> FloatArray:
         """Return the logarithm of a driving force over its floor, shape (m, q)."""
@@ -964,13 +976,17 @@ def check_end(
         ``negative-order-needs-floor``, ``phase-vanishes``.
     """
     account, ends = path.account, complete[:, None]
-    terms = [term for hindrance in path.hindrances for term in hindrance.terms]
-    for product in (path.rate, *terms):
+    terms = [
+        (term, (i, t))
+        for i, hindrance in enumerate(path.hindrances)
+        for t, term in enumerate(hindrance.terms)
+    ]
+    for product, place in ((path.rate, None), *terms):
         orders = product.exponents[:, :-1]
         if orders.min() < 0:
             s = orders.shape[1]
             absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & ends
-            law.check_absences(reactions, 0, absent, orders)
+            law.check_absences(reactions, 0, absent, orders, place)
     if ((account.end[:, -2:] == 0) & ends).any():
         raise refuse(
             "phase-vanishes",
