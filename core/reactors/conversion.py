@@ -41,6 +41,7 @@ _WIDEST = 2.0  # of the first panel, in u
 _FURTHEST = 700.0  # u beyond which the rest of the way is no normal number
 _RESOLVED = 1e-12  # last coefficients of a series over its mean
 _COARSE = 1e-9  # the same, where halving no longer helps because the rate itself is no better
+_NOTHING = 1e-18  # of the size so far: a panel that adds no more is passed as it is
 _MOST_HALVINGS = 60
 _MOST_PANELS = 2000
 _BLOCK = 1024  # panels evaluated in one call
@@ -149,7 +150,8 @@ class _Panels:
     def tail(self) -> FloatArray:
         """Last coefficients over the mean, shape (m,)."""
         last: FloatArray = np.abs(self.series[:, -3:]).max(axis=1)
-        return np.asarray(last / np.abs(self.series[:, 0]))
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            return np.asarray(last / np.abs(self.series[:, 0]))
 
     @property
     def at_end(self) -> FloatArray:
@@ -311,7 +313,8 @@ class _March:
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 panels = self._panels(case, start, width)
                 whole, tail = panels.integral, panels.tail
-            good = (tail <= _RESOLVED) | (halved >= 8) & (tail <= _COARSE)
+                nothing = width * np.abs(panels.series).sum(axis=1) <= _NOTHING * done
+            good = (tail <= _RESOLVED) | (halved >= 8) & (tail <= _COARSE) | nothing
             inside = good & (done + whole >= wanted)
             # What lies near the start of the first panel is better seen in a smaller one.
             small = inside & (start == 0) & (wanted < _SHALLOW * whole)
@@ -328,8 +331,8 @@ class _March:
             result[place[at_end]] = self.furthest[case[at_end]]
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 ahead = 2.0 * (wanted - done) / panels.at_end
+                shrunk = np.where(small, 2.0 * width * wanted / whole, 0.5 * width)
             ahead = np.where(ahead > 0, ahead, np.inf)
-            shrunk = np.where(small, 2.0 * width * wanted / whole, 0.5 * width)
             width = np.where(passed, np.minimum(2.0 * width, ahead), shrunk)
             halved = np.where(bad, halved + 1, 0)
             on = ~(inside | at_end)
