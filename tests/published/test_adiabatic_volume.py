@@ -119,7 +119,8 @@ def test_acetone_cracking():
     assert_allclose(float(k.at(1035.0)), 3.58, atol=0.06)
     law = replace(rate_law(reactions, {"acetone": 1}), constant=k)
     found = size_reactor(SizingProblem(reactions, 0, feed, law, 0.2, PlugFlow(), known), 401)
-    # dT/dX = -dH(T)/(C_pA + X dC_p), with dH and C_p as printed.
+    # dT/dX = -dH(T)/(C_pA + X dC_p), with dH and C_p as printed; the last coefficient of dH is
+    # rounded from that of dC_p, which is 5e-5 of it here.
     x, t = found.profile.conversion, found.profile.temperature
 
     def heat(t):
@@ -129,7 +130,7 @@ def test_acetone_cracking():
         return 26.63 + 0.183 * t - 45.86e-6 * t**2 + x * (6.8 - 11.5e-3 * t - 3.81e-6 * t**2)
 
     middle = (t[2:] - t[:-2]) / (x[2:] - x[:-2])
-    assert_allclose(middle, (-heat(t) / flow(x, t))[1:-1], rtol=1e-5)
+    assert_allclose(middle, (-heat(t) / flow(x, t))[1:-1], rtol=6e-5)
 
     def inverse(z):
         at = np.interp(z, x, t)
