@@ -407,12 +407,13 @@ class RateLaw:
         subject = rate_subject(reactions, reaction)
         where = (*subject, "constant")
         product = self._one_way(self.constant, self.orders, stream, where, follow=follow)
-        factors = np.log(positive(self.activity, (*subject, "activity"), "activity"))
-        if not isinstance(self.effectiveness, Pellet):
-            factors = factors + np.log(
-                positive(self.effectiveness, (*subject, "effectiveness"), "effectiveness")
-            )
-        return replace(product, ln_factor=product.ln_factor + factors)
+        for name in ("activity", "effectiveness"):
+            factor = getattr(self, name)
+            # Mostly a plain 1, which need not be looked at.
+            if factor != 1.0 if isinstance(factor, float) else not isinstance(factor, Pellet):
+                ln_factor = np.log(positive(factor, (*subject, name), name))
+                product = replace(product, ln_factor=product.ln_factor + ln_factor)
+        return product
 
     def hindrances(
         self, reactions: ReactionSet, reaction: int, stream: Stream, *, follow: bool = False

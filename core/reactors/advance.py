@@ -7,6 +7,7 @@ size, the variable is (1 - X/X_limit) to the power that makes it smooth.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +24,7 @@ _RTOL = 1e-12
 _ENDS: FloatArray = np.array([0.0, 1.0])
 _DIED = -30 * float(np.log(10.0))  # of a rate that the fall of temperature alone has taken
 _LARGEST_U = 700.0
+_PANEL = 4.0  # in u, of one case
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,6 +87,10 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
     check_alive(path, reactions, there, rate)
 
     edges, position = _with_kinks(path, u)
+    if n == 1 and position is None and u.shape[1] == 2 and 0 < u[0, 1] < _LARGEST_U:
+        # One case is soonest done with panels that need not be halved.
+        edges = np.linspace(0.0, u[:, 1], 1 + math.ceil(u[0, 1] / _PANEL), axis=1)
+        position = np.array([[0, edges.shape[1] - 1]])
     panels = edges.shape[1] - 1
     variable = Variable.of(path)
     if variable.complete is not None and (variable.complete & (variable.power <= 0)).any():

@@ -15,7 +15,7 @@ L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM, 2013, ch
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.polynomial.legendre import leggauss, legvander
@@ -27,6 +27,7 @@ from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.advance import Integrand, Variable, does_not_start, kinks_of
 from core.reactors.path import Place, ReactionPath, check_end
+from core.records import record
 from core.streams.stream import Stream
 
 _ORDER = 20
@@ -50,6 +51,15 @@ _AT_ONCE: FloatArray = np.array(
     [0.0, 0.05, 0.2, 0.5, 1.0, 2.0, 3.0, 4.0, 5.5, 7.0, 8.5, 10.0, 12.0, 14.0, 16.0]
 )
 """Edges of the panels that one case looks at together; u = 16 leaves a tenth of a millionth."""
+
+
+def _panel_nodes(edges: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Return nodes of the panels between edges, shape (p, 20), and the panels' widths, (p,)."""
+    width = np.diff(edges)
+    return edges[:-1, None] + width[:, None] * (0.5 + 0.5 * _NODES), width
+
+
+_NODES_AT_ONCE, _WIDTHS_AT_ONCE = _panel_nodes(_AT_ONCE)
 _ROUNDING = 4 * float(np.finfo(float).eps)
 
 
@@ -126,7 +136,7 @@ def conversion_at(
     return reached
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class _Panels:
     """Series of the integrand on panels, m of them.
 
@@ -249,10 +259,15 @@ class _March:
         self.by_volume = by_volume and path.volume_changes
         self.variable = Variable.of(path, to_end=False)
         self.integrand = Integrand(path, self.variable)
-        ends: FloatArray = np.full((path.size, 1), _FURTHEST)
-        self.furthest = self.variable.from_u(ends)[:, 0]
-        kinks = kinks_of(path, ends[:, 0])
-        self.kinks = None if kinks is None else self.variable.from_u(kinks)
+        self.kinks = kinks_of(path, np.full(path.size, _FURTHEST))
+        if self.kinks is not None:
+            self.kinks = self.variable.from_u(self.kinks)
+
+    @cached_property
+    def furthest(self) -> FloatArray:
+        """The variable at u = 700, shape (N,)."""
+        ends: FloatArray = np.full((self.path.size, 1), _FURTHEST)
+        return self.variable.from_u(ends)[:, 0]
 
     def find(self, case: IndexArray) -> FloatArray:
         """Return u at which the cases reach what is wanted, at most 700, shape (m,)."""
@@ -280,20 +295,22 @@ class _March:
         edges, wanted = _AT_ONCE, float(self.wanted[case[0]])
         if self.variable.root is not None:
             edges = edges ** (1.0 / float(self.variable.root[case[0]]))
-        x = edges[:-1, None] + np.diff(edges)[:, None] * (0.5 + 0.5 * _NODES)
+            x, width = _panel_nodes(edges)
+        else:
+            x, width = _NODES_AT_ONCE, _WIDTHS_AT_ONCE
         y = self._values(case, x.reshape(1, -1)).reshape(x.shape)
         with np.errstate(invalid="ignore", over="ignore"):
-            panels = _Panels(edges[:-1], np.diff(edges), y @ _SERIES)
-            sums = np.cumsum(panels.integral)
-        if not sums[0] > 0:
-            return None
-        at = int(np.searchsorted(sums, wanted))
+            panels = _Panels(edges[:-1], width, y @ _SERIES)
+            sums = panels.integral.cumsum()
+        at = int(sums.searchsorted(wanted))
         if at >= len(sums) or not (panels.tail[: at + 1] <= _RESOLVED).all():
             return None
-        before = float(sums[at - 1]) if at else 0.0
-        if at == 0 and wanted < _SHALLOW * sums[0]:
+        if at == 0 and not wanted >= _SHALLOW * sums[0]:
             return None
-        return panels.rows(np.array([at])).where(np.array([wanted - before]))
+        part = wanted - (float(sums[at - 1]) if at else 0.0)
+        width = panels.width[at : at + 1]
+        only = _where_in_one(panels.series[at].tolist(), part / (0.5 * float(width[0])))
+        return panels.start[at : at + 1] + 0.5 * width * (1.0 + only)
 
     def _outward(self, case: IndexArray) -> FloatArray:
         """Return the variable of each case, one panel of each at a time."""

@@ -39,6 +39,7 @@ from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.adiabat import Adiabat, adiabat
 from core.reactors.single_case import SingleCase
+from core.records import record
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats
 
@@ -52,7 +53,7 @@ _ALMOST = -600.0  # ln of what is left where a limit is looked for
 _SCAN_BLOCK = 500  # cases scanned at a time
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class Place:
     """Where N cases, or some of them several times, stand on their way.
 
@@ -87,7 +88,7 @@ class Trend(Enum):
     MIXED = "mixed"
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class Account:
     """Amounts at both ends of the way and their changes along it, N cases.
 
@@ -139,7 +140,7 @@ class Account:
         return np.where(self.change < 0, self.end - self.change * left[:, None], rise)
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class ReactionPath:
     """The way from the feed to the limit, and the rate along it; N cases.
 
@@ -571,12 +572,13 @@ def reaction_path(
     at_equilibrium = np.zeros(n, dtype=bool)
     opposing = None
     if ratio is not None:
-        smallest, product = _reach(start, slope)
         onward, unmoved = _direction(ratio, start, np.log(c0), largest)
-        ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
-        exhausted = np.where(onward < 0, product, reactant)
-        opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
-        if (onward < 0).any():
+        opposing = ratio
+        if not (onward > 0).all():
+            smallest, product = _reach(start, slope)
+            ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
+            exhausted = np.where(onward < 0, product, reactant)
+            opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
             forward = forward.times(ratio.to_the(np.where(onward < 0, 1.0, 0.0)))
     at_range = np.zeros(n, dtype=bool)
     if warm is not None and (opposing is not None or target is None):
@@ -762,10 +764,25 @@ def _to_end(start: FloatArray, slope: FloatArray, x: FloatArray) -> Account:
     return Account(start, change, end)
 
 
+def _value_of_one(product: PowerProduct, amounts: list[float], ln_c0: float) -> float | None:
+    """Return the logarithm of a product at the feed, of one case; None if it has none."""
+    total = float(product.ln_factor[0])
+    for power, amount in zip(product.exponents[0].tolist(), amounts, strict=False):
+        if power:
+            if amount == 0:
+                return None
+            total += power * (ln_c0 + math.log(amount))
+    return total
+
+
 def _direction(
     ratio: PowerProduct, start: FloatArray, ln_c0: FloatArray, largest: FloatArray
 ) -> tuple[FloatArray, BoolArray]:
     """Return the sign of the net reaction at the feed, and where it is at equilibrium."""
+    if len(start) == 1 and not ratio.floored:
+        total = _value_of_one(ratio, start[0].tolist(), float(ln_c0[0]))
+        if total is not None:
+            return np.array([-1.0 if total > 0 else float(total < 0)]), np.array([total == 0])
     with np.errstate(divide="ignore", invalid="ignore"):
         ln = np.log(start)
         value = ratio.ln_value(lambda j: (ln_c0 + ln[:, j])[:, None], lambda a: a[:, None])[:, 0]

@@ -270,7 +270,7 @@ def outlet_stream(problem: SizingProblem, path: ReactionPath, *, constant_volume
     there = account.up_to(path.target_gone, path.target_left)
     substances = there.shape[1] - 2
     flows = (path.key_flow[:, None] * there[:, :substances]).reshape(*lead, substances)
-    warmth = path.warmth(target_place(path))
+    warmth = None if path.adiabat is None else path.warmth(target_place(path))
     temperature, pressure = feed.temperature, feed.pressure
     warmer: FloatArray | float = 1.0
     if warmth is not None:
