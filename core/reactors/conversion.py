@@ -15,6 +15,7 @@ L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM, 2013, ch
 
 from __future__ import annotations
 
+import math
 from functools import cached_property
 
 import numpy as np
@@ -168,7 +169,7 @@ class _Panels:
         """Integrand at the end of each, shape (m,)."""
         return np.asarray(self.series.sum(axis=1))
 
-    def rows(self, some: IndexArray | BoolArray) -> _Panels:
+    def rows(self, some: IndexArray | BoolArray | slice) -> _Panels:
         """Return some of them."""
         return _Panels(self.start[some], self.width[some], self.series[some])
 
@@ -204,7 +205,11 @@ _RECURRENCE = [((2 * k + 1) / (k + 1), k / (k + 1), 1 / (2 * k + 1)) for k in ra
 
 def _where_in_one(series: list[float], part: float) -> float:
     """Return t where the integral of one series from -1 is as given, as :meth:`_Panels.where`."""
-    low, high, t = -1.0, 1.0, min(max(-1.0 + part / series[0], -1.0), 1.0)
+    low, high, mean, bend = -1.0, 1.0, series[0], series[1]
+    # Where a straight line through the panel has it: mean (1 + t) - bend (1 - t^2)/2.
+    span = (mean - bend) ** 2 + 2.0 * bend * part
+    t = 2.0 * part / (mean - bend + math.sqrt(span)) - 1.0 if span > 0 and bend < mean else 0.0
+    t = min(max(t, -1.0), 1.0)
     for _ in range(100):
         before, now = 1.0, t
         total, slope = series[0] * (1.0 + t), series[0]
@@ -303,7 +308,7 @@ class _March:
             panels = _Panels(edges[:-1], width, y @ _SERIES)
             sums = panels.integral.cumsum()
         at = int(sums.searchsorted(wanted))
-        if at >= len(sums) or not (panels.tail[: at + 1] <= _RESOLVED).all():
+        if at >= len(sums) or not (panels.rows(slice(at + 1)).tail <= _RESOLVED).all():
             return None
         if at == 0 and not wanted >= _SHALLOW * sums[0]:
             return None

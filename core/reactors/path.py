@@ -373,8 +373,7 @@ class ReactionPath:
         """Return the power of the way gone that the opposing rate begins with, shape (N,)."""
         if self.opposing is None:
             return np.zeros(self.size)
-        absent = self.account.start[:, :-1] == 0
-        begins: FloatArray = (absent * self.opposing.exponents).sum(axis=1)
+        begins: FloatArray = _powers_of(self.opposing, self.account.start[:, :-1] == 0)
         return begins
 
     def order_at_exhaustion(self) -> FloatArray:
@@ -406,7 +405,7 @@ _WHOLE: FloatArray = np.ones((1, 1))
 
 
 def _powers_of(product: PowerProduct, gone: BoolArray) -> FloatArray:
-    found: FloatArray = np.where(gone, product.exponents, 0.0).sum(axis=1)
+    found: FloatArray = np.add.reduce(gone * product.exponents, axis=1)
     return found
 
 
@@ -531,13 +530,9 @@ def reaction_path(
     hindrances = law.hindrances(reactions, 0, feed, follow=follow)
     pores = law.pores(reactions, 0, feed, follow=follow)
     asked = np.zeros(()) if target is None else np.asarray(target, dtype=float)
-    lead = np.broadcast_shapes(
-        feed.flows.shape[:-1],
-        volumetric_flow.shape,
-        asked.shape,
-        over,
-        *_shapes(forward, ratio, hindrances, pores),
-    )
+    shapes = [feed.flows.shape[:-1], volumetric_flow.shape, asked.shape, over]
+    shapes += _shapes(forward, ratio, hindrances, pores)
+    lead = np.broadcast_shapes(*shapes) if any(shapes) else ()
     n = math.prod(lead)
 
     def flat(a: FloatArray) -> FloatArray:
@@ -598,12 +593,13 @@ def reaction_path(
         # From the nearer end, which is where the limit is known best.
         distance = np.where(found & (share > 0.5), distance - ahead * rest, limit - asked)
     if target is None:
-        asked, distance = limit, np.zeros(n)
-    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        gone = np.where(asked == 0, 0.0, asked / limit)
-        left = np.where(asked == 0, 1.0, distance / limit)
-    # A target that cannot be told from complete conversion is complete conversion.
-    left = np.where(~at_equilibrium & (np.abs(left) <= 2 * _EPS), 0.0, left)
+        asked, gone, left = limit, np.ones(n), np.zeros(n)
+    else:
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            gone = np.where(asked == 0, 0.0, asked / limit)
+            left = np.where(asked == 0, 1.0, distance / limit)
+        # A target that cannot be told from complete conversion is complete conversion.
+        left = np.where(~at_equilibrium & (np.abs(left) <= 2 * _EPS), 0.0, left)
     path = ReactionPath(
         lead=lead,
         key_flow=key_flow,

@@ -306,4 +306,5 @@ def limit_of(path: ReactionPath) -> Limit:
 
 def signed(path: ReactionPath, rate: FloatArray) -> FloatArray:
     """Return a rate in the direction of travel, shape (N, q), as one of consumption of the key."""
-    return rate * np.where(path.limit < 0, -1.0, 1.0)[:, None]
+    backward = path.limit < 0
+    return np.where(backward[:, None], -rate, rate) if backward.any() else rate
