@@ -17,7 +17,7 @@ from core.equilibrium.feed_at_equilibrium import (
 from core.equilibrium.outlet import MeasuredOutlet
 from core.errors import Refused, Subject
 from core.outlet_analysis.feed import KnownFeed, feed_of_account
-from core.outlet_analysis.reconciliation import estimate
+from core.outlet_analysis.gases import estimate_of_gas
 from core.rates.equilibrium_constant import (
     EquilibriumConstant,
 )
@@ -109,15 +109,12 @@ class EquilibriumQuestion:
     ----------
     problem : FeedAtEquilibrium
     gas_model : str
-    gas : KnownGas or None
-        Of a gas model that is not ideal.
     outlet : MeasuredOutlet or None
     per_mole_of_key : bool
     """
 
     problem: FeedAtEquilibrium
     gas_model: str
-    gas: KnownGas | None
     outlet: MeasuredOutlet | None
     per_mole_of_key: bool
 
@@ -139,22 +136,18 @@ def read(document: Any) -> tuple[EquilibriumQuestion, EdgeMap]:
 def _read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> EquilibriumQuestion | None:
-    key, feed, outlet = _read_streams(request, reader, reactions)
+    models = GasReader.of(request, reader, reactions)
+    key, feed, outlet = _read_streams(request, reader, reactions, models)
     phase: StreamPhase = request["feed"].get("phase", "gas") if feed is None else feed.stream.phase
     constants = _read_constants(request, reader, reactions, phase)
     reader.at(("reactions",), "/reactions")
     reader.at(("feed", "compressibility"), "/feed/compressibility")
     reader.at(("hold",), "/hold")
-    models = GasReader.of(request, reader, reactions)
     at = _read_conditions(request.get("at", {}), reader)
     over, values = _read_sweep(request, reader)
     if feed is None or constants is None or len(reader.faults):
         return None
-    if models.real and phase != "gas":
-        models.no_gas()
-        return None
-    gas = models.known(feed.stream.in_phase)
-    witness = None
+    gas, witness = _gas_of_feed(feed, models), None
     if gas is None and phase == "gas":
         witness = witness_of(reactions, feed.stream.in_phase.tobytes())
     thermal = _read_properties(request, reader, reactions, phase, places(reader, reactions))
@@ -166,25 +159,33 @@ def _read_question(
         feed=feed.stream,
         constants=constants,
         hold=request["hold"],
-        equation=None if gas is None else gas.equation,
-        witness=None if witness is None else witness.gas.equation,
+        gas=gas,
+        witness=None if witness is None else witness.gas,
         properties=None if thermal is None else thermal[0],
         heats=None if thermal is None else thermal[1],
         over=over,
         values=values,
         **at,
     )
-    return EquilibriumQuestion(problem, request["gas_model"], gas, outlet, feed.per_mole_of_key)
+    return EquilibriumQuestion(problem, request["gas_model"], outlet, feed.per_mole_of_key)
+
+
+def _gas_of_feed(feed: KnownFeed, models: GasReader) -> KnownGas | None:
+    """Return the gas model of the phase that the reactions run in."""
+    if feed.gas is None or (feed.gas.in_gas == feed.stream.in_phase).all():
+        return feed.gas
+    # An analysis read more in the gas than what is a gas at equilibrium.
+    return models.known(feed.stream.in_phase)
 
 
 def _read_streams(
-    request: Json, reader: RequestReader, reactions: ReactionSet
+    request: Json, reader: RequestReader, reactions: ReactionSet, models: GasReader
 ) -> tuple[int, KnownFeed | None, MeasuredOutlet | None]:
     """Return the key and the feed, and the outlet where one was measured: of one account then."""
     if "outlet" not in request:
         key = read_key(request, reader, reactions)
-        return key, read_feed(request["feed"], "/feed", reader, reactions, key), None
-    account = read_question(request, reader, reactions)
+        return key, read_feed(request["feed"], "/feed", reader, reactions, key, models), None
+    account = read_question(request, reader, reactions, models)
     for name in ("temperature", "pressure"):
         liquid = request["outlet"].get("phase") == "liquid"
         if name not in request["outlet"] and not (name == "pressure" and liquid):
@@ -208,8 +209,8 @@ def _read_streams(
     if of_feed is None or of_outlet is None or of_outlet.temperature is None or reader.faults:
         return problem.key, None, None
     try:
-        found = estimate(problem)
-        feed = feed_of_account(found, of_feed)
+        found = estimate_of_gas(problem, account.gas)
+        feed = feed_of_account(found, of_feed, account.gas)
     except Refused as refused:
         reader.collect(refused)
         return problem.key, None, None

@@ -179,7 +179,7 @@ class _Writer:
 
     def answer(self) -> Answer:
         problem, states, edge = self.problem, self.states, self.edge
-        reach = self.reached.range
+        reach, own = self.reached.range, self.feed.volumetric_flow
         result: Json = {
             "key": self.names[problem.key],
             "hold": problem.hold,
@@ -195,8 +195,8 @@ class _Writer:
                 self.feed.flows,
                 self.feed.temperature,
                 self.feed.pressure,
-                self.reached.compressibility_of_feed,
-                self._inlet_volume(),
+                self.feed.compressibility,
+                None if own is None else float(own),
             ),
             "outlet": self._stream(
                 states.amounts[0],
@@ -207,7 +207,7 @@ class _Writer:
             ),
             "equilibrium_constants": self._constants(),
         }
-        if self.question.gas is not None:
+        if self.problem.gas is not None:
             inside = np.flatnonzero(self.feed.in_phase).tolist()
             each = states.ln_fugacity_coefficients[0].tolist()
             result["fugacity_coefficients"] = {
@@ -257,13 +257,6 @@ class _Writer:
         if scale.offset:
             return {"value": pressure / STANDARD_PRESSURE, "unit": "bar"}
         return self.edge.number(pressure, "pressure")
-
-    def _inlet_volume(self) -> float | None:
-        own = self.feed.volumetric_flow
-        if own is None:
-            return None
-        ratio = self.reached.compressibility_of_feed / self.feed.compressibility
-        return float(own) * (ratio if self.feed.phase == "gas" else 1.0)
 
     def _stream(
         self,
@@ -382,11 +375,11 @@ class _Writer:
         if self.problem.properties is not None and self.reached.heat is not None:
             used = {p.substance: used.get(p.substance, p) for p in self.problem.properties} | used
         told = write_sources(self.edge, used.values())
-        gas = self.question.gas
+        gas = self.problem.gas
         return told if gas is None else write_gas(self.edge, gas, told)
 
     def _gas_words(self) -> str:
-        return gas_words(self.question.gas, "fugacities and volumes")
+        return gas_words(self.problem.gas, "fugacities and volumes")
 
     def _sweep(self) -> Table:
         """Return the states of the sweep, a row each; None where there is no answer."""
@@ -417,7 +410,7 @@ class _Writer:
             else:
                 columns[f"{self.words.flow} {name}"] = _cells(amounts[:, i] / flow.factor)
                 units[f"{self.words.flow} {name}"] = flow.unit
-        if self.question.gas is not None:
+        if self.problem.gas is not None:
             columns["compressibility"] = _cells(states.compressibility[1:])
         if self.reached.heat is not None and self.problem.hold.startswith("temperature"):
             scale = edge.scales[self._heat_dimension]

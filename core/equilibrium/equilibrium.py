@@ -20,7 +20,6 @@ from core.equilibrium.problem import Equilibrium, EquilibriumProblem
 from core.equilibrium.reaction_space import ReactionSpace, reaction_space
 from core.errors import Amount, Fault, refuse
 from core.numerics.roots import find_root
-from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import GasState
 
 CONSISTENT = 1e-6
@@ -47,8 +46,8 @@ def solve_equilibrium(problem: EquilibriumProblem) -> Equilibrium:
     Refused
         For the problem as a whole: ``inconsistent-constants``, ``no-flow``,
         ``flow-negative``, ``compute-budget``. What concerns a sample is in ``faults``:
-        ``equilibrium-not-found``, ``mixture-vanishes``, ``no-such-temperature``,
-        ``inconsistent-constants``.
+        ``equilibrium-not-found``, ``mixture-vanishes``, ``not-a-gas``,
+        ``no-such-temperature``, ``inconsistent-constants``.
     """
     _check_feed(problem)
     solver = _Solver(problem)
@@ -131,6 +130,7 @@ class _Solver:
             np.zeros(count, dtype=np.intp),
         )
         self.ln_gamma = np.zeros(problem.feed.shape)
+        self.liquid: BoolArray = np.zeros(count, dtype=bool)
 
     @cached_property
     def per_total(self) -> bool:
@@ -266,7 +266,9 @@ class _Solver:
         equation = self.problem.mixture.equation
         assert equation is not None
         inside = self.in_gas(found.ln_amounts)
-        gas = equation.state(temperature, pressure, inside)
+        gas = equation.state(temperature, pressure, inside, of_gas=True)
+        self.liquid[rows] = settled & gas.liquid_like
+        settled &= ~gas.liquid_like
         if not self.per_total:
             # At such a pressure another root is the stable one: one gas does not fill the volume.
             filled = (
@@ -299,7 +301,7 @@ class _Solver:
         assert equation is not None
         pressure = self.pressure_at(temperature, rows, ln_amounts)
         pressure = np.where(pressure > 0, pressure, np.nan)
-        gas = equation.state(temperature, pressure, self.in_gas(ln_amounts))
+        gas = equation.state(temperature, pressure, self.in_gas(ln_amounts), of_gas=True)
         found = np.zeros(ln_amounts.shape)
         found[:, self.in_mixture] = gas.ln_fugacity_coefficients
         if not self.per_total:
@@ -415,6 +417,15 @@ class _Solver:
                 " inert gas",
                 facts,
             )
+        if self.liquid[row]:
+            return Fault(
+                "not-a-gas",
+                self.problem.subject,
+                "at {temperature} the equation of state has what comes to equilibrium as a liquid"
+                " only: correct temperature or pressure, or declare the phase of what is condensed"
+                " under 'species'",
+                facts,
+            )
         return Fault(
             "equilibrium-not-found",
             self.problem.subject,
@@ -435,7 +446,6 @@ class _Solver:
         iterations = np.zeros(count, dtype=np.intp)
         excess = np.full((count, len(nu)), np.nan)
         stopped: BoolArray = np.zeros((count, len(nu)), dtype=bool)
-        condenses: BoolArray = np.zeros(count, dtype=bool)
         if len(good):
             point = self.at(temperature[good], good)
             for at in np.flatnonzero(~point.settled).tolist():
@@ -453,14 +463,6 @@ class _Solver:
             if problem.mixture.phase == "gas" and self.per_total:
                 amount = self.in_gas(ln_n).sum(axis=1)
                 volume[good] = z[good] * amount * GAS_CONSTANT * temperature[good] / pressure[good]
-            if problem.mixture.equation is not None and point.gas is not None:
-                here = good[sound]
-                condenses[here] = would_condense(
-                    problem.mixture.equation,
-                    temperature[here],
-                    pressure[here],
-                    self.in_gas(ln_n[sound]),
-                )
             excess[good], stopped[good] = self.affinities(temperature[good], good, point)
             bad = good[~sound]
             for values in (ln_amounts, ln_phi, pressure, volume, z, excess):
@@ -489,7 +491,6 @@ class _Solver:
             volume,
             z,
             ln_phi,
-            condenses,
             share.max(axis=1, initial=0.0),
             iterations,
             self.faults,

@@ -25,8 +25,8 @@ from core.rates.equilibrium_constant import (
 )
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
-from core.real_gas.cubic import CubicEquation
-from core.real_gas.remarks import remark_on_constants, remark_on_gas
+from core.real_gas.equation import KnownGas
+from core.real_gas.remarks import remark_on_constants
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
@@ -53,14 +53,15 @@ class FeedAtEquilibrium:
     reactions : ReactionSet
     key : int
     feed : Stream
-        Flows of shape (S,), or the amounts of a batch.
+        Flows of shape (S,), or the amounts of a batch; its compressibility is that by
+        ``gas``, where temperature and pressure are known.
     constants : tuple of EquilibriumConstant, length R
     hold : Hold
     temperature, pressure, volume : float or None
         K, Pa and m3 where they are not those of the feed.
-    equation : CubicEquation or None
+    gas : KnownGas or None
         Of the substances of the gas; None for an ideal one.
-    witness : CubicEquation or None
+    witness : KnownGas or None
         By which an ideal gas is judged, where its constants are known.
     properties : tuple of StandardProperties, length S, or None
         None where a substance's are not known: then no heat is told.
@@ -80,8 +81,8 @@ class FeedAtEquilibrium:
     temperature: float | None = None
     pressure: float | None = None
     volume: float | None = None
-    equation: CubicEquation | None = None
-    witness: CubicEquation | None = None
+    gas: KnownGas | None = None
+    witness: KnownGas | None = None
     properties: tuple[StandardProperties, ...] | None = None
     heats: HeatsOfReaction | None = None
     over: Over | None = None
@@ -113,7 +114,6 @@ class FeedReached:
         Of the key, -.
     range : ConversionRange
         By what is fed, every reaction running both ways.
-    compressibility_of_feed : float
     heat : ndarray, shape (N,), or None
         To be supplied, W (batch: J): the change of enthalpy, or where volume is
         held of internal energy. Zero where that is what is held.
@@ -124,7 +124,6 @@ class FeedReached:
     states: Equilibrium
     conversion: FloatArray
     range: ConversionRange
-    compressibility_of_feed: float
     heat: FloatArray | None
     notes: tuple[Note, ...]
 
@@ -162,16 +161,19 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     count = 1 if problem.values is None else 1 + len(problem.values)
     temperature = _held(problem, "temperature", count)
     pressure = _held(problem, "pressure", count)
-    equation = problem.equation if feed.phase == "gas" else None
-    z = _compressibility(problem, equation)
-    volume = _volume(problem, z)
-    start, faults = _energy_of_feed(problem, temperature, z)
+    volume = _volume(problem)
+    start, faults = _energy_of_feed(problem, temperature)
     adiabatic = not problem.hold.startswith("temperature")
     if adiabatic and start is None:
         raise Refused(faults)
     asked = EquilibriumProblem(
         reactions=reactions,
-        mixture=Mixture(feed.in_phase, feed.phase, STANDARD_PRESSURE, equation),
+        mixture=Mixture(
+            feed.in_phase,
+            feed.phase,
+            STANDARD_PRESSURE,
+            None if problem.gas is None else problem.gas.equation,
+        ),
         feed=np.broadcast_to(feed.flows, (count, len(feed.flows))),
         constants=problem.stated_constants,
         hold=problem.hold,
@@ -198,7 +200,6 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         states=states,
         conversion=_conversion(problem, states),
         range=conversion_range(_both_ways(reactions), problem.key, feed.flows),
-        compressibility_of_feed=z,
         heat=None if start is None else _heat(problem, states, start),
         notes=(),
     )
@@ -265,7 +266,7 @@ def _check(problem: FeedAtEquilibrium) -> None:
             " the temperature",
             over=problem.over,
         )
-    if feed.phase == "gas" and feed.compressibility != 1.0:
+    if feed.phase == "gas" and abs(feed.compressibility / _compressibility(problem) - 1) > 1e-9:
         raise refuse(
             "field-not-used",
             ("feed", "compressibility"),
@@ -375,8 +376,8 @@ def _held(problem: FeedAtEquilibrium, name: Over, count: int) -> FloatArray | No
     return held
 
 
-def _volume(problem: FeedAtEquilibrium, z: float) -> float | None:
-    """Return the volume that is held, or of a liquid, m3 or m3/s; ``z`` is that of the feed."""
+def _volume(problem: FeedAtEquilibrium) -> float | None:
+    """Return the volume that is held, or of a liquid, m3 or m3/s."""
     feed = problem.feed
     if feed.phase == "liquid":
         own = feed.volumetric_flow
@@ -407,24 +408,20 @@ def _volume(problem: FeedAtEquilibrium, z: float) -> float | None:
             "volume is held and not known; state it under 'at', or temperature and pressure of the"
             " feed",
         )
-    return float(own) * z
+    return float(own)
 
 
-def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None) -> float:
-    """Return Z of the feed."""
+def _compressibility(problem: FeedAtEquilibrium) -> float:
+    """Return Z that the feed has by its gas model."""
     feed = problem.feed
-    if equation is None or feed.temperature is None or feed.pressure is None:
-        return feed.compressibility
-    state = equation.state(
-        np.array([feed.temperature]),
-        np.array([feed.pressure]),
-        feed.flows[None, feed.in_phase],
-    )
-    return float(state.compressibility[0])
+    if problem.gas is None or feed.temperature is None or feed.pressure is None:
+        return 1.0
+    of = (feed.temperature, feed.pressure, np.where(feed.in_phase, feed.flows, 0.0))
+    return float(problem.gas.known_compressibility(*of, ("feed",)))
 
 
 def _energy_of_feed(
-    problem: FeedAtEquilibrium, temperature: FloatArray | None, z: float
+    problem: FeedAtEquilibrium, temperature: FloatArray | None
 ) -> tuple[float | None, list[Fault]]:
     """Return what energy the feed has, W (batch: J); None, and why, where no heat can be told."""
     feed = problem.feed
@@ -433,7 +430,7 @@ def _energy_of_feed(
     lacking = [
         name
         for name in ("temperature", "pressure")
-        if getattr(feed, name) is None and (name == "temperature" or problem.equation is not None)
+        if getattr(feed, name) is None and (name == "temperature" or problem.gas is not None)
     ]
     if lacking:
         return None, [
@@ -451,7 +448,8 @@ def _energy_of_feed(
         return None, faults
     t = np.array([feed.temperature], dtype=float)
     p = np.array([np.nan if feed.pressure is None else feed.pressure])
-    return float(_energies(problem, feed.flows[None], t, p, np.array([z]))[0]), []
+    z = np.array([feed.compressibility])
+    return float(_energies(problem, feed.flows[None], t, p, z)[0]), []
 
 
 def _beyond_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> list[Fault]:
@@ -501,8 +499,8 @@ def _energies(
     if problem.feed.phase == "liquid":
         return total
     gas = flows[:, inside].sum(axis=1)
-    if problem.equation is not None:
-        state = problem.equation.state(temperature, pressure, flows[:, inside])
+    if problem.gas is not None:
+        state = problem.gas.equation.state(temperature, pressure, flows[:, inside], of_gas=True)
         total = total + gas * state.residual_enthalpy
     if problem.hold.endswith("volume"):
         total = total - compressibility * gas * GAS_CONSTANT * temperature
@@ -578,23 +576,17 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
     if problem.feed.solvent_unknown:
         yield SOLVENT_UNKNOWN
     yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
-    equation = problem.equation or problem.witness
-    if problem.feed.phase == "gas" and equation is not None:
+    gas = problem.gas or problem.witness
+    if problem.feed.phase == "gas" and gas is not None:
         good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))
-        inside = states.amounts[np.ix_(good, problem.feed.in_phase)]
-        at = states.temperature[good], states.pressure[good], inside
-        ideal = problem.equation is None
-        seen = equation.state(*at)
-        condenses = would_condense(equation, *at) if ideal else states.may_condense[good]
-        yield from remark_on_gas(
-            seen.compressibility, condenses, taken_as_ideal=ideal, subject=("gas_model",)
-        )
+        at = states.temperature[good], states.pressure[good], states.amounts[good]
+        ideal = problem.gas is None
+        yield from gas.remarks(*at, taken_as_ideal=ideal, subject=("gas_model",))
         if reached.heat is not None:
-            yield from _remarks_on_feed(problem.feed, equation)
+            yield from _remarks_on_feed(problem.feed, gas)
         if ideal:
-            nu = reactions.nu[:, problem.feed.in_phase]
             yield from remark_on_constants(
-                seen.ln_fugacity_coefficients @ nu.T,
+                gas.ln_fugacity_coefficients(*at) @ reactions.nu.T,
                 [reaction.id for reaction in reactions.reactions],
                 ("gas_model",),
             )
@@ -614,12 +606,12 @@ def _remarks_on_heats(reached: FeedReached) -> Iterator[Note]:
         yield from constant.remarks_on_heat(heat, temperature, order, subject)
 
 
-def _remarks_on_feed(feed: Stream, equation: CubicEquation) -> Iterator[Note]:
+def _remarks_on_feed(feed: Stream, gas: KnownGas) -> Iterator[Note]:
     """Remark on a feed whose enthalpy is counted as a gas's while some of it is liquid."""
     if feed.temperature is None or feed.pressure is None:
         return
     at = np.array([feed.temperature]), np.array([feed.pressure])
-    if would_condense(equation, *at, feed.flows[None, feed.in_phase]).any():
+    if would_condense(gas.equation, *at, feed.flows[None, feed.in_phase]).any():
         yield Note(
             "gas-may-condense",
             "at its own temperature and pressure the equation of state has a liquid form out of the"

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +16,8 @@ from core.rates.equilibrium_constant import (
     LnCorrelation,
     coefficient_sum,
 )
-from core.real_gas.cubic import CubicEquation
+from core.real_gas.equation import KnownGas
+from core.real_gas.remarks import remark_on_constants
 from core.streams.metered import Measurement
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
 from core.thermochemistry.reaction_properties import EXTRAPOLATED, ReactionProperties
@@ -72,16 +73,26 @@ class ReactionApproach:
 
 
 def approaches(
-    constants: StatedConstants, outlet: MeasuredOutlet, equation: CubicEquation | None
+    constants: StatedConstants,
+    outlet: MeasuredOutlet,
+    gas: KnownGas | None = None,
+    witness: KnownGas | None = None,
 ) -> tuple[tuple[ReactionApproach | None, ...], tuple[Note, ...]]:
     """Return the approach of each reaction, and notes on those that have none.
 
-    Fugacity coefficients are those of the outlet as it is.
+    Parameters
+    ----------
+    constants : StatedConstants
+    outlet : MeasuredOutlet
+    gas : KnownGas or None
+        None for an ideal one. Fugacity coefficients are those of the outlet as it is.
+    witness : KnownGas or None
+        By which an ideal gas is judged, where its constants are known.
     """
     reactions, in_mixture = constants.reactions, constants.in_mixture
     found: list[ReactionApproach | None] = []
     notes: list[Note] = []
-    ln_activities, gradients = _activities(constants, outlet, equation)
+    ln_activities, gradients = _activities(constants, outlet, gas)
     u_flow = np.sqrt(
         np.maximum(((outlet.forms @ outlet.covariance) * outlet.forms).sum(axis=1), 0.0)
     )
@@ -132,11 +143,32 @@ def approaches(
         else:
             found.append(one)
             notes.extend(constant.notes(one.equilibrium_temperature, subject))
+    if gas is None and witness is not None:
+        notes += _judged_as_ideal(constants, outlet, witness, found)
     return tuple(found), tuple(notes)
 
 
+def _judged_as_ideal(
+    constants: StatedConstants,
+    outlet: MeasuredOutlet,
+    witness: KnownGas,
+    found: Sequence[ReactionApproach | None],
+) -> Iterator[Note]:
+    """Remark on constants that the fugacities of the outlet as it is would change."""
+    told = np.array([one is not None for one in found])
+    if outlet.pressure is None or not told.any():
+        return
+    flows = np.nan_to_num(np.maximum(outlet.flows, 0.0))
+    ln_phi = witness.ln_fugacity_coefficients(
+        outlet.temperature.value, outlet.pressure.value, flows
+    )
+    ids = [reaction.id for reaction in constants.reactions.reactions]
+    shift = np.where(told, constants.reactions.nu @ ln_phi, 0.0)
+    yield from remark_on_constants(shift[None], ids, outlet.temperature.subject[:-1])
+
+
 def _activities(
-    constants: StatedConstants, outlet: MeasuredOutlet, equation: CubicEquation | None
+    constants: StatedConstants, outlet: MeasuredOutlet, gas: KnownGas | None
 ) -> tuple[FloatArray, FloatArray]:
     """Logarithms of activities, shape (S,), and their derivatives by the unknowns, (S, n)."""
     inside: BoolArray = constants.in_mixture
@@ -149,13 +181,11 @@ def _activities(
         each = each - np.log(total)
         each = each + np.log(outlet.pressure.value / constants.standard_pressure)
         gradients = gradients - outlet.forms[inside].sum(axis=0) / total
-        if equation is not None:
-            state = equation.state(
-                np.array([outlet.temperature.value]),
-                np.array([outlet.pressure.value]),
-                np.maximum(outlet.flows[inside], 0.0)[None],
+        if gas is not None:
+            flows = np.maximum(outlet.flows, 0.0)
+            each = each + gas.ln_fugacity_coefficients(
+                outlet.temperature.value, outlet.pressure.value, flows
             )
-            each[inside] += state.ln_fugacity_coefficients[0]
     elif outlet.volume is not None:
         each = each - np.log(outlet.volume)
         if outlet.volume_form is not None:

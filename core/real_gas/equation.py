@@ -58,6 +58,22 @@ class KnownGas:
         z = self.equation.compressibility_of_gas(t, p, inside)
         return z.reshape(flows.shape[:-1])
 
+    def ln_fugacity_coefficients(
+        self,
+        temperature: float | FloatArray,
+        pressure: float | FloatArray,
+        flows: FloatArray,
+    ) -> FloatArray:
+        """Return ln of the fugacity coefficients of a gas, shape (..., S); 0 outside it.
+
+        Arguments as of :meth:`compressibility`.
+        """
+        t, p, inside = self._rows(temperature, pressure, flows)
+        found = np.zeros((len(t), len(self.in_gas)))
+        state = self.equation.state(t, p, inside, of_gas=True)
+        found[:, self.in_gas] = state.ln_fugacity_coefficients
+        return found.reshape(flows.shape)
+
     def _rows(
         self, temperature: float | FloatArray, pressure: float | FloatArray, flows: FloatArray
     ) -> tuple[FloatArray, FloatArray, FloatArray]:

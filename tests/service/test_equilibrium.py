@@ -4,6 +4,7 @@ import copy
 import csv
 import io
 import math
+import re
 
 import numpy as np
 import pytest
@@ -14,6 +15,7 @@ from uncertainties import ufloat
 from uncertainties.umath import log as ulog
 
 from core.equilibrium import budget, newton
+from core.real_gas.cubic import CubicEquation
 from schemas.examples import EXAMPLES
 from tests.support import SHIFT_FEED, assert_refused, changed, post, result, value
 
@@ -961,6 +963,77 @@ def test_what_a_sweep_is_warned_of_at_its_ends_is_told_once(client):
     assert codes(client, within, sweep=sweep).count("correlation-extrapolated") == 1
 
 
+# -- readings by a gas model
+
+
+COMPRESSED = changed(
+    AMMONIA,
+    gas_model="peng-robinson",
+    feed__flows=...,
+    feed__flow="200 m3/h",
+    feed__meter={"temperature": "40 degC", "pressure": "195 bar"},
+    feed__analysis={
+        "basis": "mole",
+        "values": {"N2": "23 %", "H2": "69 %", "NH3": "3 %"},
+        "balance": "Ar",
+    },
+)
+LEAVING = {
+    "phase": "gas",
+    "temperature": "470 degC",
+    "pressure": "148 bar",
+    "analysis": {"basis": "concentration", "values": {"NH3": "0.4 kmol/m3"}},
+}
+
+
+def test_a_metered_feed_counts_with_z_of_the_gas_model(client):
+    """The feed is that which /v1/conversion makes of the same meter."""
+    found = post(client, "equilibrium", COMPRESSED).get_json()
+    (note,) = [n for n in found["notes"] if n["code"] == "compressibility-found"]
+    z = float(re.search(r"Z = ([0-9.]+)", note["detail"])[1])
+    assert z > 1.05
+    ideal = value(ask(client, COMPRESSED, gas_model="ideal")["inlet"]["total"])
+    assert_allclose(value(found["result"]["inlet"]["total"]), ideal / z, rtol=1e-4)
+    account = changed(COMPRESSED, reactions=["N2 + 3 H2 <=> 2 NH3"], outlet=LEAVING)
+    same = result(client, "conversion", account)["inlet"]["species"]
+    for name, said in found["result"]["inlet"]["species"].items():
+        assert_allclose(value(said["flow"]), value(same[name]["flow"]), rtol=1e-9)
+
+
+def test_an_outlet_counts_with_z_of_the_gas_model(client):
+    """Concentrations of the outlet, as /v1/conversion takes them."""
+    account = changed(COMPRESSED, reactions=["N2 + 3 H2 <=> 2 NH3"], outlet=LEAVING)
+    species = result(client, "conversion", account)["outlet"]["species"]
+    y = np.array([value(species[name]["mole_fraction"]) for name in ("N2", "H2", "NH3", "Ar")])
+    answer = post(client, "equilibrium", changed(COMPRESSED, outlet=LEAVING)).get_json()
+    said = [answer["provenance"]["properties"][name] for name in ("N2", "H2", "NH3", "Ar")]
+    equation = CubicEquation(
+        "peng-robinson",
+        np.array([value(of["critical_temperature"], "K") for of in said]),
+        np.array([of["critical_pressure"]["value"] * 1e5 for of in said]),
+        np.array([value(of["acentric_factor"]) for of in said]),
+    )
+    state = equation.state(np.array([743.15]), np.array([148e5]), y[None])
+    ln_activity = np.log(y * 148) + state.ln_fugacity_coefficients[0]
+    at = ask(client, AMMONIA, at={"temperature": "470 degC"})["equilibrium_constants"]
+    ln_k = value(at["synthesis"]["natural_logarithm"])
+    ratio = answer["result"]["approach"]["synthesis"]["quotient_over_constant"]
+    assert_allclose(math.log(value(ratio)), ln_activity @ [-1, -3, 2, 0] - ln_k, rtol=1e-6)
+
+
+@pytest.mark.parametrize("stated", [1, 0.97])
+def test_a_compressibility_beside_a_gas_model_is_refused(client, stated):
+    real = changed(AMMONIA, gas_model="peng-robinson", feed__compressibility=stated)
+    refused(client, real, "field-not-used", "/feed/compressibility")
+
+
+def test_a_feed_that_is_no_gas_is_refused(client):
+    real = changed(SHIFT, gas_model="peng-robinson", at={"temperature": "700 K"})
+    steam = changed(real, feed__flows={"H2O": "300 kmol/h", "CO": "1 kmol/h"})
+    assert "gas-may-condense" not in codes(client, steam)
+    refused(client, steam, "not-a-gas", "/feed", feed__temperature="300 K")
+
+
 # -- what one part of the question says against another
 
 
@@ -1078,5 +1151,5 @@ def test_what_a_step_tries_counts_as_work(client, monkeypatch):
         "gas_model": "soave-redlich-kwong",
     }
     ask(client, coke)
-    assert len(tried) > 1000
+    assert len(tried) > 300
     assert sum(work) > 0.25 * len(tried) * budget.CALL
