@@ -269,7 +269,8 @@ NOTES: dict[str, Entry] = {
     "compressibility-found": Entry(
         "Z of a gas found with the account",
         "A reading of a gas counts by its Z, which follows from the composition by the gas model."
-        " The uncertainties take it as exact.",
+        " The uncertainties count that it moves with the account, and take the model itself, and"
+        " the conditions at a meter, as exact in it.",
     ),
     "no-redundancy": Entry(
         "No redundancy",
