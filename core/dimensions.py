@@ -30,6 +30,8 @@ DIMENSIONS: dict[str, Exponents] = {
     "reaction_rate_per_mass": (-1, 0, -1, 0, 1),
     "energy": (1, 2, -2, 0, 0),
     "power": (1, 2, -3, 0, 0),
+    "heat_capacity": (1, 2, -2, -1, 0),
+    "heat_capacity_flow": (1, 2, -3, -1, 0),
     "molar_energy": (1, 2, -2, 0, -1),
     "molar_heat_capacity": (1, 2, -2, -1, -1),
 }

@@ -16,6 +16,7 @@ from core.equilibrium.feed_at_equilibrium import (
 )
 from core.equilibrium.outlet import MeasuredOutlet
 from core.errors import Refused, Subject
+from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.feed import KnownFeed, feed_of_account
 from core.outlet_analysis.gases import estimate_of_gas
 from core.rates.equilibrium_constant import (
@@ -24,6 +25,7 @@ from core.rates.equilibrium_constant import (
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.equation import KnownGas
 from core.real_gas.witness import witness_of
+from core.streams.known import Conditions
 from core.streams.stream import StreamPhase
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import HeatsOfReaction
@@ -110,12 +112,15 @@ class EquilibriumQuestion:
     problem : FeedAtEquilibrium
     gas_model : str
     outlet : MeasuredOutlet or None
+    account : Estimate or None
+        Of feed and outlet together, where an outlet was measured.
     per_mole_of_key : bool
     """
 
     problem: FeedAtEquilibrium
     gas_model: str
     outlet: MeasuredOutlet | None
+    account: Estimate | None
     per_mole_of_key: bool
 
 
@@ -137,7 +142,7 @@ def _read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> EquilibriumQuestion | None:
     models = GasReader.of(request, reader, reactions)
-    key, feed, outlet = _read_streams(request, reader, reactions, models)
+    key, feed, measured = _read_streams(request, reader, reactions, models)
     phase: StreamPhase = request["feed"].get("phase", "gas") if feed is None else feed.stream.phase
     constants = _read_constants(request, reader, reactions, phase)
     reader.at(("reactions",), "/reactions")
@@ -167,7 +172,8 @@ def _read_question(
         values=values,
         **at,
     )
-    return EquilibriumQuestion(problem, request["gas_model"], outlet, feed.per_mole_of_key)
+    outlet, account = (None, None) if measured is None else measured
+    return EquilibriumQuestion(problem, request["gas_model"], outlet, account, feed.per_mole_of_key)
 
 
 def _gas_of_feed(feed: KnownFeed, models: GasReader) -> KnownGas | None:
@@ -180,7 +186,7 @@ def _gas_of_feed(feed: KnownFeed, models: GasReader) -> KnownGas | None:
 
 def _read_streams(
     request: Json, reader: RequestReader, reactions: ReactionSet, models: GasReader
-) -> tuple[int, KnownFeed | None, MeasuredOutlet | None]:
+) -> tuple[int, KnownFeed | None, tuple[MeasuredOutlet, Estimate] | None]:
     """Return the key and the feed, and the outlet where one was measured: of one account then."""
     if "outlet" not in request:
         key = read_key(request, reader, reactions)
@@ -245,8 +251,18 @@ def _read_streams(
         pressure=of_outlet.pressure,
         volume=volume,
         volume_form=form,
+        compressibility=_compressibility(found, of_outlet, account.gas),
     )
-    return problem.key, feed, outlet
+    return problem.key, feed, (outlet, found)
+
+
+def _compressibility(found: Estimate, outlet: Conditions, gas: KnownGas | None) -> float:
+    """Return Z of the outlet measured: as stated, or by the gas model, or 1."""
+    t, p = outlet.temperature, outlet.pressure
+    if gas is None or not outlet.real or t is None or p is None:
+        return outlet.compressibility
+    # Where there is no gas the approach is refused.
+    return float(gas.compressibility(t.value, p.value, np.maximum(found.outlet_flows, 0.0)))
 
 
 def _read_constants(

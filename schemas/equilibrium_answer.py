@@ -10,14 +10,17 @@ import numpy as np
 from marshmallow import fields
 
 from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
 from core.equilibrium.feed_at_equilibrium import (
     FeedReached,
     constant_subject,
     told_once,
 )
-from core.equilibrium.outlet import ReactionApproach
+from core.equilibrium.outlet import MeasuredOutlet, ReactionApproach
 from core.errors import Amount, Note, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.estimate import Estimate
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import (
     STANDARD_PRESSURE,
@@ -30,6 +33,7 @@ from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import LARGEST_EXPONENT, ApproachSchema, write_approach
+from schemas.conversion_answer import ReconciliationSchema, write_reconciliation
 from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
@@ -72,6 +76,20 @@ class EquilibriumHeatSchema(OpenSchema):
     adiabatic_rise = number("Of the temperature, where no heat passes.")
 
 
+class MeasuredOutletSchema(OpenSchema):
+    """What the readings of feed and outlet together say of the outlet that was measured.
+
+    /v1/conversion answers the same streams in full: yields, closures, and the
+    account without a suspect reading.
+    """
+
+    conversion = number("Of the key, as measured.", required=True)
+    outlet = fields.Nested(
+        StreamResultSchema, metadata=describe("Reconciled; absent where not all of it is told.")
+    )
+    reconciliation = fields.Nested(ReconciliationSchema, required=True)
+
+
 class EquilibriumResult(OpenSchema):
     """The composition at equilibrium, and what it is compared with."""
 
@@ -106,6 +124,9 @@ class EquilibriumResult(OpenSchema):
     approach = numbers_by_name(
         ApproachSchema,
         "By reaction, of the measured outlet; u is of its readings, K is taken as exact.",
+    )
+    measured = fields.Nested(
+        MeasuredOutletSchema, metadata=describe("Of a measured outlet: its account.")
     )
     sweep = fields.Nested(
         TableSchema,
@@ -176,6 +197,7 @@ class _Writer:
         self.ids = [reaction.id for reaction in self.reactions.reactions]
         self.words = words_of(self.feed.batch)
         self.temperature = float(self.states.temperature[0])
+        self.measured = question.account
 
     def answer(self) -> Answer:
         problem, states, edge = self.problem, self.states, self.edge
@@ -197,6 +219,7 @@ class _Writer:
                 self.feed.pressure,
                 self.feed.compressibility,
                 None if own is None else float(own),
+                self.reached.heat_capacities[0],
             ),
             "outlet": self._stream(
                 states.amounts[0],
@@ -204,6 +227,7 @@ class _Writer:
                 _finite(states.pressure[0]),
                 float(states.compressibility[0]),
                 _finite(states.volume[0]),
+                self.reached.heat_capacities[1],
             ),
             "equilibrium_constants": self._constants(),
         }
@@ -219,6 +243,8 @@ class _Writer:
         result["heat"] = self._heat()
         if self.approach is not None:
             result["approach"] = self._approach()
+        if self.measured is not None:
+            result["measured"] = self._measured(self.measured)
         if problem.values is not None:
             result["sweep"] = self._sweep().document()
         assumed = [
@@ -265,8 +291,9 @@ class _Writer:
         pressure: float | None,
         z: float,
         volume: float | None,
+        heat_capacity: float,
     ) -> Json:
-        return write_stream(
+        stream = write_stream(
             self.edge,
             self.names,
             flows,
@@ -278,6 +305,11 @@ class _Writer:
             compressibility=z,
             fractions=not self.feed.solvent_unknown,
         )
+        if np.isfinite(heat_capacity):
+            name = "heat_capacity" if self.feed.batch else "heat_capacity_flow"
+            dimension = "molar_heat_capacity" if self.question.per_mole_of_key else name
+            stream[name] = self.edge.number(heat_capacity, dimension)
+        return stream
 
     def _volume_known(self) -> bool:
         return self.feed.phase == "gas" or self.feed.volumetric_flow is not None
@@ -367,6 +399,46 @@ class _Writer:
         each = zip(self.ids, self.approach[0], strict=True)
         return {id_: write_approach(found, self.edge.uncertain) for id_, found in each}
 
+    def _measured(self, found: Estimate) -> Json:
+        of = conversion_results(found, closures=False).conversion
+        value = float(of.value)
+        said: Json = {
+            "conversion": self.edge.uncertain(value, float(of.u), "dimensionless")
+            if np.isfinite(value)
+            else None
+        }
+        outlet = self.question.outlet
+        assert outlet is not None
+        if np.isfinite(outlet.flows).all():
+            forms = np.concatenate([outlet.forms, outlet.forms.sum(axis=0)[None]])
+            u = found.u_of(forms)
+            pressure = None if outlet.pressure is None else outlet.pressure.value
+            said["outlet"] = write_stream(
+                self.edge,
+                self.names,
+                outlet.flows,
+                self.feed.in_phase,
+                batch=self.feed.batch,
+                volume=self._volume_of(outlet),
+                temperature=outlet.temperature.value,
+                pressure=pressure,
+                compressibility=outlet.compressibility,
+                fractions=not self.feed.solvent_unknown,
+                u=u[:-1],
+                total_u=float(u[-1]),
+            )
+        said["reconciliation"] = write_reconciliation(self.edge, found)
+        return said
+
+    def _volume_of(self, outlet: MeasuredOutlet) -> float | None:
+        """Return the volumetric flow of the outlet measured, m3/s (batch: m3), where known."""
+        if self.feed.phase == "liquid":
+            return outlet.volume
+        if outlet.pressure is None:
+            return None
+        moles = float(outlet.flows[self.feed.in_phase].sum()) * outlet.compressibility
+        return moles * GAS_CONSTANT * outlet.temperature.value / outlet.pressure.value
+
     def _sources(self) -> Json:
         used: dict[str, StandardProperties] = {}
         for constant in self.problem.constants:
@@ -419,8 +491,24 @@ class _Writer:
         return Table(columns, units)
 
     def _table(self) -> Table:
-        """Return the sweep, or else the composition, a row for each substance."""
-        return self._composition() if self.problem.values is None else self._sweep()
+        """Return the sweep, or else the composition, a row for each substance.
+
+        What there is one of, the approach of a reaction, stands in every row.
+        """
+        table = self._composition() if self.problem.values is None else self._sweep()
+        if self.approach is None:
+            return table
+        columns, units = dict(table.columns), dict(table.units)
+        rows = len(next(iter(columns.values())))
+        kelvin = self.edge.scales["temperature_difference"]
+        for id_, found in zip(self.ids, self.approach[0], strict=True):
+            for name, value in (
+                (f"approach {id_}", None if found is None else found.approach),
+                (f"u of approach {id_}", None if found is None else found.u),
+            ):
+                columns[name] = [None if value is None else value / kelvin.factor] * rows
+                units[name] = kelvin.unit
+        return Table(columns, units)
 
     def _composition(self) -> Table:
         flow = self.edge.scales[self.words.flow_dimension]
@@ -435,7 +523,11 @@ class _Writer:
             f"equilibrium {word}": (amounts / flow.factor).tolist(),
             "mole fraction": _cells(fractions),
         }
-        return Table(columns, {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit})
+        units = {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit}
+        if self.question.outlet is not None:
+            columns[f"measured {word}"] = _cells(self.question.outlet.flows / flow.factor)
+            units[f"measured {word}"] = flow.unit
+        return Table(columns, units)
 
     def _page(self) -> Page:
         edge, problem = self.edge, self.problem
@@ -454,6 +546,9 @@ class _Writer:
             if heat is not None and name in heat:
                 numbers.append((words, heat[name]))
         verdict = f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %."
+        if self.measured is not None:
+            of_measured = self._measured(self.measured)["conversion"]
+            numbers.append((f"measured conversion of {key}", of_measured))
         if self.approach is not None:
             for id_, of in self._approach().items():
                 numbers.append((f"approach of {id_}", None if of is None else of["approach"]))

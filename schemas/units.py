@@ -44,6 +44,8 @@ DEFAULT_UNITS: dict[str, str] = {
     "reaction_rate_per_mass": "mol/(kg h)",
     "energy": "MJ",
     "power": "kW",
+    "heat_capacity": "kJ/K",
+    "heat_capacity_flow": "kW/K",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
 }

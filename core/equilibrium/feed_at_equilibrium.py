@@ -31,7 +31,11 @@ from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import HeatsOfReaction, temperatures_known
-from core.thermochemistry.reaction_properties import ReactionProperties, beyond_range
+from core.thermochemistry.reaction_properties import (
+    ReactionProperties,
+    beyond_range,
+    contradictions,
+)
 
 Over = Literal["temperature", "pressure"]
 
@@ -117,6 +121,9 @@ class FeedReached:
     heat : ndarray, shape (N,), or None
         To be supplied, W (batch: J): the change of enthalpy, or where volume is
         held of internal energy. Zero where that is what is held.
+    heat_capacities : tuple of float
+        Of the feed and of the state asked for, at constant pressure and composition,
+        W/K (batch: J/K); not a number where not known.
     notes : tuple of Note
     """
 
@@ -125,6 +132,7 @@ class FeedReached:
     conversion: FloatArray
     range: ConversionRange
     heat: FloatArray | None
+    heat_capacities: tuple[float, float]
     notes: tuple[Note, ...]
 
 
@@ -201,9 +209,20 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         conversion=_conversion(problem, states),
         range=conversion_range(_both_ways(reactions), problem.key, feed.flows),
         heat=None if start is None else _heat(problem, states, start),
+        heat_capacities=(np.nan, np.nan)
+        if start is None
+        else (
+            _heat_capacity(problem, feed.flows, feed.temperature, feed.pressure),
+            _heat_capacity(
+                problem,
+                states.amounts[0],
+                float(states.temperature[0]),
+                float(states.pressure[0]),
+            ),
+        ),
         notes=(),
     )
-    return replace(reached, notes=(*_without_heat(faults), *_notes(reached)))
+    return replace(reached, notes=told_once((*_without_heat(faults), *_notes(reached))))
 
 
 def _conversion(problem: FeedAtEquilibrium, states: Equilibrium) -> FloatArray:
@@ -507,6 +526,25 @@ def _energies(
     return total
 
 
+def _heat_capacity(
+    problem: FeedAtEquilibrium,
+    flows: FloatArray,
+    temperature: float | None,
+    pressure: float | None,
+) -> float:
+    """Return the heat capacity of a stream at constant pressure, W/K (batch: J/K)."""
+    assert problem.heats is not None
+    assert temperature is not None
+    each = [float(cp.at(temperature)) for cp in problem.heats.heat_capacities]
+    total = float(flows @ np.array(each))
+    if problem.gas is not None:
+        inside = flows[problem.feed.in_phase]
+        at = np.array([temperature]), np.array([pressure], dtype=float), inside[None]
+        state = problem.gas.equation.state(*at, of_gas=True)
+        total += float(inside.sum() * state.residual_heat_capacity[0])
+    return total
+
+
 def _heat(problem: FeedAtEquilibrium, states: Equilibrium, start: float) -> FloatArray:
     """Return the heat to be supplied in each state, W (batch: J)."""
     if not problem.hold.startswith("temperature"):
@@ -538,6 +576,8 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
         for temperature in temperatures
         for note in constant.notes(temperature, constant_subject(reactions, j))
     )
+    if problem.properties is not None and reached.heat is not None:
+        yield from contradictions(problem.properties)
     yield from _remarks_on_heats(reached)
     written_one_way = [r.id for r in reactions.reactions if not r.reversible]
     if written_one_way:

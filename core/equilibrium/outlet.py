@@ -46,6 +46,8 @@ class MeasuredOutlet:
     volume : float or None
         m3/s (batch: m3), of a liquid.
     volume_form : ndarray, shape (n,), or None
+    compressibility : float
+        Of a gas: as stated, or by its model.
     """
 
     flows: FloatArray
@@ -55,6 +57,17 @@ class MeasuredOutlet:
     pressure: Measurement | None = None
     volume: float | None = None
     volume_form: FloatArray | None = None
+    compressibility: float = 1.0
+
+    @property
+    def subject(self) -> Subject:
+        """The outlet of the request."""
+        return self.temperature.subject[:-1]
+
+    @property
+    def gas_flows(self) -> FloatArray:
+        """Flows as an equation of state takes them: none below zero, none unknown."""
+        return np.nan_to_num(np.maximum(self.flows, 0.0))
 
 
 @dataclass(frozen=True)
@@ -88,6 +101,11 @@ def approaches(
         None for an ideal one. Fugacity coefficients are those of the outlet as it is.
     witness : KnownGas or None
         By which an ideal gas is judged, where its constants are known.
+
+    Raises
+    ------
+    Refused
+        ``not-a-gas`` of an outlet that the equation of state has as a liquid only.
     """
     reactions, in_mixture = constants.reactions, constants.in_mixture
     found: list[ReactionApproach | None] = []
@@ -143,28 +161,30 @@ def approaches(
         else:
             found.append(one)
             notes.extend(constant.notes(one.equilibrium_temperature, subject))
-    if gas is None and witness is not None:
-        notes += _judged_as_ideal(constants, outlet, witness, found)
+    notes += _remarks_on_gas(constants, outlet, gas, witness, found)
     return tuple(found), tuple(notes)
 
 
-def _judged_as_ideal(
+def _remarks_on_gas(
     constants: StatedConstants,
     outlet: MeasuredOutlet,
-    witness: KnownGas,
+    gas: KnownGas | None,
+    witness: KnownGas | None,
     found: Sequence[ReactionApproach | None],
 ) -> Iterator[Note]:
-    """Remark on constants that the fugacities of the outlet as it is would change."""
+    """Remark on the gas of the outlet as it is, and on constants that its fugacities change."""
     told = np.array([one is not None for one in found])
-    if outlet.pressure is None or not told.any():
+    known = gas or witness
+    if known is None or outlet.pressure is None or not told.any():
         return
-    flows = np.nan_to_num(np.maximum(outlet.flows, 0.0))
-    ln_phi = witness.ln_fugacity_coefficients(
-        outlet.temperature.value, outlet.pressure.value, flows
-    )
-    ids = [reaction.id for reaction in constants.reactions.reactions]
-    shift = np.where(told, constants.reactions.nu @ ln_phi, 0.0)
-    yield from remark_on_constants(shift[None], ids, outlet.temperature.subject[:-1])
+    flows, subject = outlet.gas_flows, outlet.subject
+    at = outlet.temperature.value, outlet.pressure.value, flows
+    yield from known.remarks(*at, taken_as_ideal=gas is None, subject=subject)
+    if gas is None:
+        ids = [reaction.id for reaction in constants.reactions.reactions]
+        ln_phi = known.ln_fugacity_coefficients(*at)
+        shift = np.where(told, constants.reactions.nu @ ln_phi, 0.0)
+        yield from remark_on_constants(shift[None], ids, subject)
 
 
 def _activities(
@@ -182,10 +202,9 @@ def _activities(
         each = each + np.log(outlet.pressure.value / constants.standard_pressure)
         gradients = gradients - outlet.forms[inside].sum(axis=0) / total
         if gas is not None:
-            flows = np.maximum(outlet.flows, 0.0)
-            each = each + gas.ln_fugacity_coefficients(
-                outlet.temperature.value, outlet.pressure.value, flows
-            )
+            at = outlet.temperature.value, outlet.pressure.value, outlet.gas_flows
+            gas.known_compressibility(*at, outlet.subject)
+            each = each + gas.ln_fugacity_coefficients(*at)
     elif outlet.volume is not None:
         each = each - np.log(outlet.volume)
         if outlet.volume_form is not None:

@@ -247,9 +247,9 @@ def monte_carlo(found: Estimate, sampling: Sampling, gas: KnownGas | None = None
             "draws-without-account",
             ("uncertainty",),
             "of {draws} draws {left_out} have no account that comes near them with every total"
-            f" positive{_as_gas(gases)}; at most {100 * MOST_LEFT_OUT:g} % may be left out. Some reading's"
-            " uncertainty is about as large as the reading: state a smaller one, or ask for linear"
-            " propagation",
+            f" positive{_as_gas(gases)}; at most {100 * MOST_LEFT_OUT:g} % may be left out. Some"
+            " reading's uncertainty is about as large as the reading: state a smaller one, or ask"
+            " for linear propagation",
             draws=sampling.draws,
             left_out=draws.left_out,
         )

@@ -225,6 +225,19 @@ class CubicEquation:
         dense = z / big_b < form.critical_z / form.factor_b
         return np.where((z > big_b) & ~(loops & dense), z, np.nan)
 
+    def packing(
+        self,
+        temperature: FloatArray,
+        pressure: FloatArray,
+        amounts: FloatArray,
+        compressibility: FloatArray,
+    ) -> FloatArray:
+        """Return the share of the volume that the molecules take, b/v, shape (N,)."""
+        _, _, b_each, _, _ = self._parameters
+        b = (amounts @ b_each) / amounts.sum(axis=1)
+        share: FloatArray = b * pressure / (compressibility * GAS_CONSTANT * temperature)
+        return share
+
     def pressure(
         self, temperature: FloatArray, volume: FloatArray, amounts: FloatArray
     ) -> FloatArray:
