@@ -184,14 +184,44 @@ def _groups(patterns: BoolArray, rows: IntArray) -> Iterator[tuple[BoolArray, In
 
 
 def _resume(search: _Search, start: Composition, scale: FloatArray) -> None:
-    """Start from what was found before, where it was found."""
+    """Start from what was found before, where it was found, without the pure phases it was without.
+
+    One of those that should be there now comes back as any does that was left out.
+    """
     ln_amounts = start.ln_amounts - np.log(scale)
-    good = start.status == Status.FOUND
     missing = search.reachable & np.isneginf(ln_amounts)
-    good &= ~(missing & search.task.in_mixture).any(axis=1)
-    good &= ~missing.any(axis=1)
-    search.warm[good] = True
-    search.ln_amounts[good] = ln_amounts[good]
+    good = (start.status == Status.FOUND) & ~(missing & search.task.in_mixture).any(axis=1)
+    width = missing.shape[1]
+    for both, rows in _groups(
+        np.concatenate([missing, search.reachable], axis=1)[good], np.flatnonzero(good)
+    ):
+        pattern = both[:width]
+        if not _without(search, np.flatnonzero(pattern), rows):
+            continue
+        search.warm[rows] = True
+        search.ln_amounts[rows] = ln_amounts[rows]
+        if pattern.any():
+            search.amounts[rows] = np.exp(ln_amounts[rows])
+
+
+def _without(search: _Search, phases: IntArray, rows: IntArray) -> bool:
+    """Leave pure phases out of what is held and there; tell whether reactions can use them up."""
+    still = ~search.reachable[rows[0]]
+    held, done = search.held[rows], []
+    for phase in phases.tolist():
+        steps = search.task.space.steps(still)
+        taking = steps.nu[:, phase]
+        if not taking.any():
+            return False
+        row = steps.nu[np.argmax(np.abs(taking))]
+        held = held - (held[:, phase] / row[phase])[:, None] * row
+        held[:, phase] = 0.0
+        still = still.copy()
+        still[phase] = True
+        done.append(phase)
+    search.held[rows] = held
+    search.there[np.ix_(rows, done)] = False
+    return True
 
 
 def _solve_group(search: _Search, pattern: BoolArray, rows: IntArray) -> IntArray:

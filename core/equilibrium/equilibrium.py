@@ -26,6 +26,7 @@ CONSISTENT = 1e-6
 """|sum w ln K| of reactions that add up to nothing, below which their constants agree."""
 _FUGACITIES_SETTLED = 5e-12
 _MOST_ROUNDS = 80
+_ROUNDS_TO_BRACKET = 25  # where another temperature will do as well
 _TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
 _LEAST_SIZE = 1e-290  # of a trace, whose reciprocal times a coefficient is still a number
 _RUNGS = 30  # between the bounds of a temperature that is sought, where there is no answer at one
@@ -131,6 +132,7 @@ class _Solver:
         )
         self.ln_gamma = np.zeros(problem.feed.shape)
         self.liquid: BoolArray = np.zeros(count, dtype=bool)
+        self.most_rounds = _MOST_ROUNDS
 
     @cached_property
     def per_total(self) -> bool:
@@ -226,7 +228,7 @@ class _Solver:
         ln_gamma = np.zeros(task.feed.shape)
         iterations = np.zeros(len(rows), dtype=np.intp)
         previous: tuple[FloatArray, FloatArray] | None = None
-        for _ in range(_MOST_ROUNDS):
+        for _ in range(self.most_rounds):
             if task.budget is not None:
                 task.budget.spend(work_of_state(len(on), task.feed.shape[1]))
             part = replace(task, ln_k=task.ln_k[on] - shift[on], feed=task.feed[on])
@@ -383,6 +385,7 @@ class _Solver:
             Whether there is an answer that leaves the wanted energy beyond it.
         """
         t = np.full(len(rows), first)
+        self.most_rounds = _ROUNDS_TO_BRACKET
         energy, sound = self.energy_at(t, rows)
         excess = energy - wanted
         side = np.sign(towards - first)
@@ -393,7 +396,12 @@ class _Solver:
                 break
             rung = first + (towards - first) * min(step + 1, _RUNGS) / _RUNGS
             trial = np.where(np.isnan(good[live]), rung, 0.5 * (bad[live] + good[live]))
-            energy, fine = self.energy_at(trial, rows[live])
+            energy, fine = np.full(len(live), np.nan), np.zeros(len(live), dtype=bool)
+            first_look = np.isnan(good[live])
+            for part, rounds in ((first_look, _ROUNDS_TO_BRACKET), (~first_look, _MOST_ROUNDS)):
+                if part.any():
+                    self.most_rounds = rounds
+                    energy[part], fine[part] = self.energy_at(trial[part], rows[live[part]])
             bad[live[~fine]] = trial[~fine]
             here = live[fine]
             good[here] = t[here] = trial[fine]
@@ -403,6 +411,7 @@ class _Solver:
             if step + 1 >= _RUNGS:
                 on &= ~np.isnan(good[live])
             live = live[on]
+        self.most_rounds = _MOST_ROUNDS
         return t, excess, sound
 
     def not_found(self, row: int, temperature: float) -> Fault:
