@@ -148,8 +148,8 @@ NOTES: dict[str, Entry] = {
     ),
     "nothing-in-phase": Entry(
         "Nothing in the phase",
-        "The readings leave nothing in the phase of a stream. Look for an analyser or a meter that"
-        " reads zero.",
+        "The readings, or pure solids and liquids at equilibrium, leave nothing in the phase of a"
+        " stream. Where it was read, look for an analyser or a meter that reads zero.",
     ),
     "mole-fractions-not-known": Entry(
         "Mole fractions not known",

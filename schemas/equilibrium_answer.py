@@ -293,17 +293,18 @@ class _Writer:
         volume: float | None,
         heat_capacity: float,
     ) -> Json:
+        there = bool(flows[self.feed.in_phase].any())
         stream = write_stream(
             self.edge,
             self.names,
             flows,
             self.feed.in_phase,
             batch=self.feed.batch,
-            volume=volume if self._volume_known() else None,
+            volume=volume if there and self._volume_known() else None,
             temperature=temperature,
             pressure=pressure,
             compressibility=z,
-            fractions=not self.feed.solvent_unknown,
+            fractions=there and not self.feed.solvent_unknown,
         )
         if np.isfinite(heat_capacity):
             name = "heat_capacity" if self.feed.batch else "heat_capacity_flow"
@@ -476,6 +477,7 @@ class _Writer:
         inside = self.feed.in_phase
         amounts = states.amounts[1:]
         total = amounts[:, inside].sum(axis=1)
+        total[total == 0] = np.nan
         for i, name in enumerate(self.names):
             if inside[i] and not self.feed.solvent_unknown:
                 columns[f"mole fraction {name}"] = _cells(amounts[:, i] / total)
@@ -513,7 +515,7 @@ class _Writer:
     def _composition(self) -> Table:
         flow = self.edge.scales[self.words.flow_dimension]
         amounts, inside = self.states.amounts[0], self.feed.in_phase
-        fractions = np.where(inside, amounts, np.nan) / amounts[inside].sum()
+        fractions = np.where(inside, amounts, np.nan) / (amounts[inside].sum() or np.nan)
         if self.feed.solvent_unknown:
             fractions = np.full_like(fractions, np.nan)
         word = self.words.flow

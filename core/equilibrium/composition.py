@@ -31,6 +31,7 @@ class Status(IntEnum):
     FOUND = 0
     NOT_CONVERGED = 1
     MIXTURE_VANISHED = 2
+    """The pure phases hold everything: what is found of them, and none of the mixture."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -161,11 +162,13 @@ def find(task: Task, start: Composition | None = None) -> Composition:
         again = [_solve_group(search, p, rows) for p, rows in _groups(search.there[todo], todo)]
         todo = np.concatenate(again)
         todo = todo[search.changes[todo] <= most_changes]
+    gone = search.status == Status.MIXTURE_VANISHED
+    search.ln_amounts[np.ix_(gone, task.in_mixture)] = -np.inf
     # Nothing is answered that does not balance.
     conserved = np.abs(task.space.conserved)
     off = np.abs((np.exp(search.ln_amounts) - fed) @ task.space.conserved.T)
     bad = ~(off <= _BALANCED * ((np.exp(search.ln_amounts) + fed) @ conserved.T)).all(axis=1)
-    search.status[bad & (search.status == Status.FOUND)] = Status.NOT_CONVERGED
+    search.status[bad] = Status.NOT_CONVERGED
     ln_amounts = search.ln_amounts + np.log(scale)
     return Composition(ln_amounts, search.status, search.iterations)
 

@@ -29,6 +29,7 @@ _MOST_ROUNDS = 80
 _ROUNDS_TO_BRACKET = 25  # where another temperature will do as well
 _TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
 _LEAST_SIZE = 1e-290  # of a trace, whose reciprocal times a coefficient is still a number
+_JUMP = 1e-6  # of the enthalpies fed: an energy that no temperature has
 _RUNGS = 30  # between the bounds of a temperature that is sought, where there is no answer at one
 _HALVINGS = 20
 
@@ -207,9 +208,8 @@ class _Solver:
         if problem.mixture.equation is None or problem.mixture.phase == "liquid":
             found = find(task, self.last.samples(rows))
             self.keep(rows, found)
-            return _Point(
-                found, np.zeros(problem.feed[rows].shape), None, found.status == Status.FOUND
-            )
+            settled = found.status != Status.NOT_CONVERGED
+            return _Point(found, np.zeros(problem.feed[rows].shape), None, settled)
         return self.with_fugacities(task, temperature, rows)
 
     def keep(self, rows: IntArray, found: Composition) -> None:
@@ -365,9 +365,34 @@ class _Solver:
             return np.where(sound, energy - wanted[mine], 0.0)
 
         found[rows] = find_root(excess, lower[rows], upper[rows], subject=problem.subject)
+        self.refuse_jumps(found, wanted, rows)
         for at in self.faults:
             found[at] = np.nan
         return found
+
+    def refuse_jumps(self, found: FloatArray, wanted: FloatArray, rows: IntArray) -> None:
+        """Refuse samples whose energy jumps past the one wanted at the temperature found.
+
+        Where pure phases alone fix the pressure of the gas it is there or gone all at once.
+        """
+        energy, sound = self.energy_at(found[rows], rows)
+        enthalpies = self.problem.enthalpies
+        assert enthalpies is not None
+        size = (np.abs(enthalpies.enthalpies(found[rows], rows)) * self.problem.feed[rows]).sum(1)
+        for at in np.flatnonzero(sound & (np.abs(energy - wanted[rows]) > _JUMP * size)).tolist():
+            row = int(rows[at])
+            self.faults.setdefault(
+                row,
+                Fault(
+                    "equilibrium-not-found",
+                    self.problem.subject,
+                    "at {temperature} pure solids and liquids alone fix the pressure of the gas, so"
+                    " that it is there or gone all at once, and some part of it would match the"
+                    " energy of the feed. Hold that temperature a little higher or lower, or add an"
+                    " inert gas",
+                    {"temperature": Amount(float(found[row]), "temperature")},
+                ),
+            )
 
     def last_sound(
         self, wanted: FloatArray, rows: IntArray, first: float, towards: float
@@ -422,8 +447,9 @@ class _Solver:
                 "mixture-vanishes",
                 self.problem.subject,
                 "at {temperature} nothing is left in the gas: the pure solids and liquids hold"
-                " everything at this pressure. Hold the volume, lower the pressure, or add an"
-                " inert gas",
+                " everything at this pressure, as far as can be told without a gas to take"
+                " fugacities from. Take the gas as ideal, hold the volume, lower the pressure, or"
+                " add an inert gas",
                 facts,
             )
         if self.liquid[row]:

@@ -596,6 +596,17 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
             subject=("reactions",),
             facts={"reactions": ", ".join(reactions.reactions[j].id for j in stopped.tolist())},
         )
+    gone = states.amounts[:, problem.feed.in_phase].sum(axis=1) == 0
+    if gone.any():
+        where = "" if gone[0] else " at {count} of {points} points of the sweep"
+        yield Note(
+            "nothing-in-phase",
+            f"nothing is left in the gas at equilibrium{where}: the pure solids and liquids hold"
+            " everything, and there are no mole fractions, no concentrations and no volume",
+            "warning",
+            ("feed",) if gone[0] else ("sweep",),
+            {"count": int(gone.sum()), "points": len(gone) - 1},
+        )
     if states.faults:
         row, fault = min(states.faults.items())
         yield Note(
@@ -618,7 +629,9 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
     yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
     gas = problem.gas or problem.witness
     if problem.feed.phase == "gas" and gas is not None:
-        good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))
+        there = states.amounts[:, problem.feed.in_phase].sum(axis=1) > 0
+        there &= ~np.isnan(states.temperature) & ~np.isnan(states.pressure)
+        good = np.flatnonzero(there)
         at = states.temperature[good], states.pressure[good], states.amounts[good]
         ideal = problem.gas is None
         yield from gas.remarks(*at, taken_as_ideal=ideal, subject=("gas_model",))

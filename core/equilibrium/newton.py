@@ -342,10 +342,10 @@ def _newton_step(
     ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
     if system.all_from_pure:
         # The pure phases alone say which shares the mixture would have to have; if these add up
-        # to more than one it grows, in these proportions, until a phase is used up.
-        ln_share = ln_minor - total[:, None] - affinity
-        ln_sum = np.logaddexp.reduce(ln_share, axis=1)
-        onward: FloatArray = -affinity + (_STRIDE * np.sign(ln_sum) - ln_sum)[:, None]
+        # to more than one it grows, in these proportions, until a phase is used up. Towards the
+        # shares at a constant amount, and to a larger or smaller one: each way goes down.
+        mean = (np.exp(ln_minor - total[:, None]) * affinity).sum(axis=1, keepdims=True)
+        onward: FloatArray = mean - affinity - _STRIDE * np.sign(mean)
         return onward
     mixture = np.where(system.in_mixture, basis.of_major, 0.0)
     shares = np.where(mixture != 0, mixture * np.exp(ln_minor[:, :, None] - ln_n[:, None, :]), 0.0)
