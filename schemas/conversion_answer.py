@@ -567,7 +567,7 @@ def _reading(edge: EdgeMap, table: ReadingTable, k: int) -> Json:
     detectable = float(table.smallest_detectable_error[k])
     said: Json = {
         "reading": place.pointer,
-        "measured": _as_read(told(table.measured[k], table.u[k])),
+        "measured": as_read(told(table.measured[k], table.u[k])),
         "reconciled": told(table.reconciled[k], table.reconciled_u[k]),
         "adjustment_over_u": _plain(table.adjustment_over_u[k]),
         "redundancy": _plain(table.redundancy[k]),
@@ -588,7 +588,7 @@ def _told(value: FloatArray | None) -> float | None:
     return None if value is None or not np.isfinite(value) else float(value)
 
 
-def _as_read(number_: Json | None) -> Json | None:
+def as_read(number_: Json | None) -> Json | None:
     """Return a reading as it was read, free of the last digit of its way to SI and back."""
     if number_ is None:
         return None

@@ -33,7 +33,7 @@ from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import LARGEST_EXPONENT, ApproachSchema, write_approach
-from schemas.conversion_answer import ReconciliationSchema, write_reconciliation
+from schemas.conversion_answer import ReconciliationSchema, as_read, write_reconciliation
 from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
@@ -206,8 +206,8 @@ class _Writer:
             "key": self.names[problem.key],
             "hold": problem.hold,
             "gas_model": self.question.gas_model,
-            "temperature": edge.number(self.temperature, "temperature"),
-            "pressure": self._number(states.pressure[0], "pressure"),
+            "temperature": as_read(edge.number(self.temperature, "temperature")),
+            "pressure": as_read(self._number(states.pressure[0], "pressure")),
             "conversion": edge.number(float(self.reached.conversion[0]), "dimensionless"),
             "largest_conversion": edge.number(reach.largest, "dimensionless"),
             "smallest_conversion": edge.number(reach.smallest + 0.0, "dimensionless"),
@@ -306,6 +306,9 @@ class _Writer:
             compressibility=z,
             fractions=there and not self.feed.solvent_unknown,
         )
+        for name in ("temperature", "pressure"):
+            if name in stream:
+                stream[name] = as_read(stream[name])
         if np.isfinite(heat_capacity):
             name = "heat_capacity" if self.feed.batch else "heat_capacity_flow"
             dimension = "molar_heat_capacity" if self.question.per_mole_of_key else name
@@ -467,7 +470,8 @@ class _Writer:
                 values = self.problem.values
             elif name in self.problem.hold:
                 values = np.full(len(values), each[0])
-            columns[name] = _cells((values - scale.offset) / scale.factor)
+            read = _cells((values - scale.offset) / scale.factor)
+            columns[name] = [None if v is None else float(f"{v:.14g}") for v in read]
             units[name] = scale.unit
         columns["conversion"] = _cells(self.reached.conversion[1:])
         if self.reactions.rank == len(self.ids):
