@@ -41,8 +41,8 @@ def solve_definite(matrices: FloatArray, right: FloatArray) -> FloatArray:
     count, k = right.shape
     if count < _MANY or k > _SMALL:
         return solve_stack(matrices, right[:, :, None])[:, :, 0]
-    a = np.ascontiguousarray(matrices.transpose(1, 2, 0))
-    x = np.ascontiguousarray(right.T)
+    a = np.array(matrices.transpose(1, 2, 0), order="C")
+    x = np.array(right.T, order="C")
     with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
         for p in range(k):
             for i in range(p + 1, k):
