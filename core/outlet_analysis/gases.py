@@ -25,6 +25,7 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray, IntArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Fault, Note, Refused, Subject, refuse
+from core.numerics.linear import solve_stack
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.estimate import Estimate, ReadingTable
 from core.outlet_analysis.preparation import BLOCK
@@ -456,7 +457,9 @@ def with_moving_gases(found: Estimate, gas: KnownGas) -> Estimate:
     covariance = np.array(found.covariance if not single else found.covariance[None])
     for part in np.array_split(rows, -(-len(rows) // BLOCK)):
         moved = _moved_by_gases(gases, z[part], part) @ _moving_gases(gases, z[part], part)
-        spread = np.linalg.inv(np.eye(z.shape[1]) - moved)
+        identity = np.broadcast_to(np.eye(z.shape[1]), moved.shape)
+        spread = solve_stack(identity - moved, identity)
+        # Where an account a little aside is none, Z is taken to stay.
         good = np.isfinite(spread).all(axis=(1, 2))
         spread, at = spread[good], part[good]
         covariance[at] = spread @ covariance[at] @ spread.transpose(0, 2, 1)
