@@ -480,7 +480,8 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
     "draws-without-account": Entry(
         "Too many draws without an account",
         "Readings drawn within their uncertainties leave too often no account with every total"
-        " positive, or no gas by its model. State smaller uncertainties, or ask for linear propagation.",
+        " positive, or no gas by its model. State smaller uncertainties, or ask for linear"
+        " propagation.",
     ),
     "not-converged": Entry(
         "Estimation did not converge",
