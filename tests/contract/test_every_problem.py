@@ -868,7 +868,7 @@ case(
     ),
     "/reactions",
 )
-case("mixture-vanishes", (EQUILIBRIUM, LIME), "/feed")
+case("mixture-vanishes", (EQUILIBRIUM, LIME | {"gas_model": "peng-robinson"}), "/feed")
 case(
     "equilibrium-not-found",
     equilibrium(
