@@ -31,13 +31,14 @@ DIMENSIONS: dict[str, Exponents] = {
     "reaction_rate_per_mass": (-1, 0, -1, 0, 1),
     "energy": (1, 2, -2, 0, 0),
     "power": (1, 2, -3, 0, 0),
+    "heat_capacity": (1, 2, -2, -1, 0),
+    "heat_capacity_flow": (1, 2, -3, -1, 0),
     "molar_energy": (1, 2, -2, 0, -1),
     "molar_heat_capacity": (1, 2, -2, -1, -1),
     "length": (0, 1, 0, 0, 0),
     "area": (0, 2, 0, 0, 0),
     "viscosity": (1, -1, -1, 0, 0),
     "heat_transfer_per_volume": (1, -1, -3, -1, 0),
-    "heat_capacity_flow": (1, 2, -3, -1, 0),
     "mass_per_molar_flow": (1, 0, 1, 0, -1),
 }
 """``mass_per_amount`` is a molar mass, or mg/Nm3; ``frequency`` a space velocity;

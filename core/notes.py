@@ -106,6 +106,19 @@ NOTES: dict[str, Entry] = {
         "The constant was computed from enthalpies of formation, entropies and heat capacities."
         " 'provenance' has the source of each; state your own under 'species'.",
     ),
+    "stated-data-contradict-tables": Entry(
+        "Stated data contradict the packaged tables",
+        "An enthalpy, entropy or heat capacity that the request states is far from what the"
+        " packaged tables have of the substance: by more than 4 kJ/mol and 2 % (an entropy 4"
+        " J/(mol K) and 3 %), or 15 % of a heat capacity at every temperature. What is stated was"
+        " taken. Check sign, unit and phase, or say which other substance is meant.",
+    ),
+    "gas-model-extrapolated": Entry(
+        "Gas model far beyond its data",
+        "The gas is so dense that the cubic equation of state, fitted to vapour pressures, is"
+        " little better than a guess: its molecules fill more than half of the volume. Check the"
+        " pressure and its unit.",
+    ),
     "sources-disagree": Entry(
         "Sources disagree",
         "Well-known collections differ on the properties behind an equilibrium constant or a heat"
@@ -144,8 +157,8 @@ NOTES: dict[str, Entry] = {
     ),
     "nothing-in-phase": Entry(
         "Nothing in the phase",
-        "The readings leave nothing in the phase of a stream. Look for an analyser or a meter that"
-        " reads zero.",
+        "The readings, or pure solids and liquids at equilibrium, leave nothing in the phase of a"
+        " stream. Where it was read, look for an analyser or a meter that reads zero.",
     ),
     "mole-fractions-not-known": Entry(
         "Mole fractions not known",
@@ -314,7 +327,8 @@ NOTES: dict[str, Entry] = {
     "compressibility-found": Entry(
         "Z of a gas found with the account",
         "A reading of a gas counts by its Z, which follows from the composition by the gas model."
-        " The uncertainties take it as exact.",
+        " The uncertainties count that it moves with the account, and take the model itself, and"
+        " the conditions at a meter, as exact in it.",
     ),
     "no-redundancy": Entry(
         "No redundancy",

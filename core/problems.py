@@ -481,7 +481,8 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
     "draws-without-account": Entry(
         "Too many draws without an account",
         "Readings drawn within their uncertainties leave too often no account with every total"
-        " positive. State smaller uncertainties, or ask for linear propagation.",
+        " positive, or no gas by its model. State smaller uncertainties, or ask for linear"
+        " propagation.",
     ),
     "not-converged": Entry(
         "Estimation did not converge",
@@ -518,7 +519,7 @@ _OUTLET_ANALYSIS: dict[str, Entry] = {
 _REACTORS: dict[str, Entry] = {
     "one-reaction-only": Entry(
         "One reaction only",
-        "This release sizes reactors for one reaction. Send the one that decides the size.",
+        "What follows the path of one reaction is computed for one. Send the one that decides it.",
     ),
     "size-not-stated": Entry(
         "Size not stated",
@@ -730,13 +731,16 @@ _EQUILIBRIUM: dict[str, Entry] = {
     ),
     "mixture-vanishes": Entry(
         "Nothing is left in the gas",
-        "At this pressure the pure solids and liquids hold everything at equilibrium. Hold the"
-        " volume, lower the pressure, or add an inert gas.",
+        "At this pressure the pure solids and liquids hold everything at equilibrium, and there is"
+        " no gas whose composition would tell its fugacities. Take the gas as ideal, which is"
+        " answered, hold the volume, lower the pressure, or add an inert gas.",
     ),
     "equilibrium-not-found": Entry(
         "Equilibrium not found",
-        "The search for the composition at equilibrium did not settle. Check the constants, and"
-        " pressure or volume, for values beyond sense.",
+        "The search for the composition at equilibrium did not settle, or pure solids and liquids"
+        " alone fix the temperature of an adiabatic one, at which any amount of the gas may be"
+        " there. Check the constants, and pressure or volume, for values beyond sense; add an inert"
+        " gas.",
     ),
     "hold-needs-batch": Entry(
         "Only a batch holds its volume",

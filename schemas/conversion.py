@@ -267,8 +267,6 @@ def read_question(
     key = read_key(request, reader, reactions)
     real = models is not None and models.real
     recycled = _check_recycle(request, reader)
-    if real:
-        _check_gas(request, reader)
     sides: Mapping[str, Side] = RECYCLED if recycled else PLAIN
     batch = any(is_batch(request[name]) for name in sides if name in request)
     readings = StreamReader(reader, reactions, batch, real=real)
@@ -479,27 +477,6 @@ def _check_recycle(request: Json, reader: RequestReader) -> bool:
             " 'recycle' make together; several streams from outside stand in 'fresh_feed'",
         )
     return True
-
-
-def _check_gas(request: Json, reader: RequestReader) -> None:
-    """Refuse what is not computed with a gas model that is not ideal."""
-    around = [name for name in AROUND if name in request]
-    if around:
-        reader.fault(
-            "conflicting-fields",
-            "/gas_model",
-            f"found {request['gas_model']!r} beside {', '.join(map(repr, around))}; around a"
-            " reactor with recycle Z is not found by a gas model: leave the gas model out and state"
-            " 'compressibility' of each gas stream and meter, or leave the recycle out",
-        )
-    if request.get("uncertainty", {}).get("method") == "monte-carlo":
-        reader.fault(
-            "conflicting-fields",
-            "/uncertainty/method",
-            f"found 'monte-carlo' beside the gas model {request['gas_model']!r}; Z that a gas model"
-            " finds is not drawn anew: state the method 'linear', or leave the gas model out and"
-            " state 'compressibility' of each gas stream and meter",
-        )
 
 
 def _recycle(streams: Mapping[str, tuple[MeteredStream, ...]]) -> Recycle:

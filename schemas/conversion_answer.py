@@ -16,7 +16,7 @@ from core.errors import Note
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
 from core.outlet_analysis.closure import Closures
 from core.outlet_analysis.conversion import ConversionResults, Overall
-from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.estimate import Estimate, ReadingTable
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.space_time_yield import SizeBasis, SpaceTimeYields
 from core.real_gas.witness import witness_of
@@ -256,7 +256,7 @@ class _Writer:
             result["closure"] = self._closure(results.closures)
         if results.overall is not None:
             result["overall"] = self._overall(results.overall)
-        result["reconciliation"] = self._reconciliation()
+        result["reconciliation"] = write_reconciliation(self.edge, found)
         if results.without_suspects:
             result["without_suspect"] = self._without_suspect()
         draws = results.draws
@@ -507,70 +507,13 @@ class _Writer:
             )
         }
 
-    def _reconciliation(self) -> Json:
-        found = self.found
-        checked = int(found.degrees_of_freedom) > 0
-        table = found.readings
-        pointers = [self.edge.place(subject).pointer for subject in table.subjects]
-        sets: dict[int, list[str]] = {}
-        for pointer, number_ in zip(pointers, table.suspect_set.tolist(), strict=True):
-            if number_:
-                sets.setdefault(number_, []).append(pointer)
-        return {
-            "degrees_of_freedom": int(found.degrees_of_freedom),
-            "chi_square": self._plain(found.chi_square),
-            "limit": self._plain(found.limit) if checked else None,
-            "p_value": self._plain(found.p_value) if checked else None,
-            "consistent": not found.inconsistent if checked or found.inconsistent else None,
-            "readings": [self._reading(k) for k in range(len(pointers))],
-            "suspects": [sets[number_] for number_ in sorted(sets)],
-        }
-
-    def _plain(self, value: Any) -> Json | None:
-        plain = float(value)
-        return {"value": plain, "unit": "1"} if np.isfinite(plain) else None
-
-    def _reading(self, k: int) -> Json:
-        table = self.found.readings
-        place = self.edge.place(table.subjects[k])
-        unit = place.unit or "1"
-
-        def told(value: Any, u: Any = None) -> Json | None:
-            if not np.isfinite(value):
-                return None
-            if u is None or not np.isfinite(u):
-                return self.edge.number(float(value) * place.per, "dimensionless", unit)
-            return self.edge.uncertain(
-                float(value) * place.per, float(u) * place.per, "dimensionless", unit=unit
-            )
-
-        detectable = float(table.smallest_detectable_error[k])
-        said: Json = {
-            "reading": place.pointer,
-            "measured": _as_read(told(table.measured[k], table.u[k])),
-            "reconciled": told(table.reconciled[k], table.reconciled_u[k]),
-            "adjustment_over_u": self._plain(table.adjustment_over_u[k]),
-            "redundancy": self._plain(table.redundancy[k]),
-            "smallest_detectable_error": (
-                self.edge.difference(detectable * place.per, unit)
-                if np.isfinite(detectable)
-                else None
-            ),
-            "suspect": bool(table.suspect_set[k]),
-        }
-        if np.isfinite(table.measurement_test[k]):
-            said["measurement_test"] = self._plain(table.measurement_test[k])
-        if table.within_limit[k] >= 0:
-            said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
-        return said
-
     def _without_suspect(self) -> Json:
         subjects = self.found.readings.subjects
         ways = [
             {
                 "removed": [self.edge.place(subjects[k]).pointer for k in removed],
                 "conversion": self._number(conversion),
-                "chi_square": self._plain(way.chi_square),
+                "chi_square": _plain(way.chi_square),
             }
             for way, (removed, conversion) in zip(
                 self.found.without_suspects, self.results.without_suspects, strict=True
@@ -583,12 +526,69 @@ class _Writer:
         return {**first, "alternatives": others} if others else first
 
 
+def write_reconciliation(edge: EdgeMap, found: Estimate) -> Json:
+    """Return how well the readings of an account agree with each other."""
+    checked = int(found.degrees_of_freedom) > 0
+    table = found.readings
+    pointers = [edge.place(subject).pointer for subject in table.subjects]
+    sets: dict[int, list[str]] = {}
+    for pointer, number_ in zip(pointers, table.suspect_set.tolist(), strict=True):
+        if number_:
+            sets.setdefault(number_, []).append(pointer)
+    return {
+        "degrees_of_freedom": int(found.degrees_of_freedom),
+        "chi_square": _plain(found.chi_square),
+        "limit": _plain(found.limit) if checked else None,
+        "p_value": _plain(found.p_value) if checked else None,
+        "consistent": not found.inconsistent if checked or found.inconsistent else None,
+        "readings": [_reading(edge, table, k) for k in range(len(pointers))],
+        "suspects": [sets[number_] for number_ in sorted(sets)],
+    }
+
+
+def _plain(value: Any) -> Json | None:
+    plain = float(value)
+    return {"value": plain, "unit": "1"} if np.isfinite(plain) else None
+
+
+def _reading(edge: EdgeMap, table: ReadingTable, k: int) -> Json:
+    place = edge.place(table.subjects[k])
+    unit = place.unit or "1"
+
+    def told(value: Any, u: Any = None) -> Json | None:
+        if not np.isfinite(value):
+            return None
+        if u is None or not np.isfinite(u):
+            return edge.number(float(value) * place.per, "dimensionless", unit)
+        return edge.uncertain(
+            float(value) * place.per, float(u) * place.per, "dimensionless", unit=unit
+        )
+
+    detectable = float(table.smallest_detectable_error[k])
+    said: Json = {
+        "reading": place.pointer,
+        "measured": as_read(told(table.measured[k], table.u[k])),
+        "reconciled": told(table.reconciled[k], table.reconciled_u[k]),
+        "adjustment_over_u": _plain(table.adjustment_over_u[k]),
+        "redundancy": _plain(table.redundancy[k]),
+        "smallest_detectable_error": (
+            edge.difference(detectable * place.per, unit) if np.isfinite(detectable) else None
+        ),
+        "suspect": bool(table.suspect_set[k]),
+    }
+    if np.isfinite(table.measurement_test[k]):
+        said["measurement_test"] = _plain(table.measurement_test[k])
+    if table.within_limit[k] >= 0:
+        said["bound"] = "within-limit" if table.within_limit[k] else "beyond-limit"
+    return said
+
+
 def _told(value: FloatArray | None) -> float | None:
     """Return a number where there is one."""
     return None if value is None or not np.isfinite(value) else float(value)
 
 
-def _as_read(number_: Json | None) -> Json | None:
+def as_read(number_: Json | None) -> Json | None:
     """Return a reading as it was read, free of the last digit of its way to SI and back."""
     if number_ is None:
         return None

@@ -16,14 +16,16 @@ from core.equilibrium.feed_at_equilibrium import (
 )
 from core.equilibrium.outlet import MeasuredOutlet
 from core.errors import Refused, Subject
+from core.outlet_analysis.estimate import Estimate
 from core.outlet_analysis.feed import KnownFeed, feed_of_account
-from core.outlet_analysis.reconciliation import estimate
+from core.outlet_analysis.gases import estimate_of_gas
 from core.rates.equilibrium_constant import (
     EquilibriumConstant,
 )
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.equation import KnownGas
 from core.real_gas.witness import witness_of
+from core.streams.known import Conditions
 from core.streams.stream import StreamPhase
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import HeatsOfReaction
@@ -109,16 +111,16 @@ class EquilibriumQuestion:
     ----------
     problem : FeedAtEquilibrium
     gas_model : str
-    gas : KnownGas or None
-        Of a gas model that is not ideal.
     outlet : MeasuredOutlet or None
+    account : Estimate or None
+        Of feed and outlet together, where an outlet was measured.
     per_mole_of_key : bool
     """
 
     problem: FeedAtEquilibrium
     gas_model: str
-    gas: KnownGas | None
     outlet: MeasuredOutlet | None
+    account: Estimate | None
     per_mole_of_key: bool
 
 
@@ -139,22 +141,18 @@ def read(document: Any) -> tuple[EquilibriumQuestion, EdgeMap]:
 def _read_question(
     request: Json, reader: RequestReader, reactions: ReactionSet
 ) -> EquilibriumQuestion | None:
-    key, feed, outlet = _read_streams(request, reader, reactions)
+    models = GasReader.of(request, reader, reactions)
+    key, feed, measured = _read_streams(request, reader, reactions, models)
     phase: StreamPhase = request["feed"].get("phase", "gas") if feed is None else feed.stream.phase
     constants = _read_constants(request, reader, reactions, phase)
     reader.at(("reactions",), "/reactions")
     reader.at(("feed", "compressibility"), "/feed/compressibility")
     reader.at(("hold",), "/hold")
-    models = GasReader.of(request, reader, reactions)
     at = _read_conditions(request.get("at", {}), reader)
     over, values = _read_sweep(request, reader)
     if feed is None or constants is None or len(reader.faults):
         return None
-    if models.real and phase != "gas":
-        models.no_gas()
-        return None
-    gas = models.known(feed.stream.in_phase)
-    witness = None
+    gas, witness = _gas_of_feed(feed, models), None
     if gas is None and phase == "gas":
         witness = witness_of(reactions, feed.stream.in_phase.tobytes())
     thermal = _read_properties(request, reader, reactions, phase, places(reader, reactions))
@@ -166,25 +164,34 @@ def _read_question(
         feed=feed.stream,
         constants=constants,
         hold=request["hold"],
-        equation=None if gas is None else gas.equation,
-        witness=None if witness is None else witness.gas.equation,
+        gas=gas,
+        witness=None if witness is None else witness.gas,
         properties=None if thermal is None else thermal[0],
         heats=None if thermal is None else thermal[1],
         over=over,
         values=values,
         **at,
     )
-    return EquilibriumQuestion(problem, request["gas_model"], gas, outlet, feed.per_mole_of_key)
+    outlet, account = (None, None) if measured is None else measured
+    return EquilibriumQuestion(problem, request["gas_model"], outlet, account, feed.per_mole_of_key)
+
+
+def _gas_of_feed(feed: KnownFeed, models: GasReader) -> KnownGas | None:
+    """Return the gas model of the phase that the reactions run in."""
+    if feed.gas is None or (feed.gas.in_gas == feed.stream.in_phase).all():
+        return feed.gas
+    # An analysis read more in the gas than what is a gas at equilibrium.
+    return models.known(feed.stream.in_phase)
 
 
 def _read_streams(
-    request: Json, reader: RequestReader, reactions: ReactionSet
-) -> tuple[int, KnownFeed | None, MeasuredOutlet | None]:
+    request: Json, reader: RequestReader, reactions: ReactionSet, models: GasReader
+) -> tuple[int, KnownFeed | None, tuple[MeasuredOutlet, Estimate] | None]:
     """Return the key and the feed, and the outlet where one was measured: of one account then."""
     if "outlet" not in request:
         key = read_key(request, reader, reactions)
-        return key, read_feed(request["feed"], "/feed", reader, reactions, key), None
-    account = read_question(request, reader, reactions)
+        return key, read_feed(request["feed"], "/feed", reader, reactions, key, models), None
+    account = read_question(request, reader, reactions, models)
     for name in ("temperature", "pressure"):
         liquid = request["outlet"].get("phase") == "liquid"
         if name not in request["outlet"] and not (name == "pressure" and liquid):
@@ -208,8 +215,8 @@ def _read_streams(
     if of_feed is None or of_outlet is None or of_outlet.temperature is None or reader.faults:
         return problem.key, None, None
     try:
-        found = estimate(problem)
-        feed = feed_of_account(found, of_feed)
+        found = estimate_of_gas(problem, account.gas)
+        feed = feed_of_account(found, of_feed, account.gas)
     except Refused as refused:
         reader.collect(refused)
         return problem.key, None, None
@@ -244,8 +251,18 @@ def _read_streams(
         pressure=of_outlet.pressure,
         volume=volume,
         volume_form=form,
+        compressibility=_compressibility(found, of_outlet, account.gas),
     )
-    return problem.key, feed, outlet
+    return problem.key, feed, (outlet, found)
+
+
+def _compressibility(found: Estimate, outlet: Conditions, gas: KnownGas | None) -> float:
+    """Return Z of the outlet measured: as stated, or by the gas model, or 1."""
+    t, p = outlet.temperature, outlet.pressure
+    if gas is None or not outlet.real or t is None or p is None:
+        return outlet.compressibility
+    # Where there is no gas the approach is refused.
+    return float(gas.compressibility(t.value, p.value, np.maximum(found.outlet_flows, 0.0)))
 
 
 def _read_constants(

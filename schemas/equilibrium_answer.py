@@ -10,14 +10,17 @@ import numpy as np
 from marshmallow import fields
 
 from core.arrays import FloatArray
+from core.constants import GAS_CONSTANT
 from core.equilibrium.feed_at_equilibrium import (
     FeedReached,
     constant_subject,
     told_once,
 )
-from core.equilibrium.outlet import ReactionApproach
+from core.equilibrium.outlet import MeasuredOutlet, ReactionApproach
 from core.errors import Amount, Note, Subject
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY
+from core.outlet_analysis.conversion import conversion_results
+from core.outlet_analysis.estimate import Estimate
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import (
     STANDARD_PRESSURE,
@@ -30,6 +33,7 @@ from core.substances.property_data import PACKAGED, StandardProperties
 from core.thermochemistry.reaction_properties import ReactionProperties
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import LARGEST_EXPONENT, ApproachSchema, write_approach
+from schemas.conversion_answer import ReconciliationSchema, as_read, write_reconciliation
 from schemas.edge import EdgeMap, Json
 from schemas.equilibrium import EquilibriumQuestion
 from schemas.feed import StreamResultSchema, words_of, write_stream
@@ -72,6 +76,20 @@ class EquilibriumHeatSchema(OpenSchema):
     adiabatic_rise = number("Of the temperature, where no heat passes.")
 
 
+class MeasuredOutletSchema(OpenSchema):
+    """What the readings of feed and outlet together say of the outlet that was measured.
+
+    /v1/conversion answers the same streams in full: yields, closures, and the
+    account without a suspect reading.
+    """
+
+    conversion = number("Of the key, as measured.", required=True)
+    outlet = fields.Nested(
+        StreamResultSchema, metadata=describe("Reconciled; absent where not all of it is told.")
+    )
+    reconciliation = fields.Nested(ReconciliationSchema, required=True)
+
+
 class EquilibriumResult(OpenSchema):
     """The composition at equilibrium, and what it is compared with."""
 
@@ -106,6 +124,9 @@ class EquilibriumResult(OpenSchema):
     approach = numbers_by_name(
         ApproachSchema,
         "By reaction, of the measured outlet; u is of its readings, K is taken as exact.",
+    )
+    measured = fields.Nested(
+        MeasuredOutletSchema, metadata=describe("Of a measured outlet: its account.")
     )
     sweep = fields.Nested(
         TableSchema,
@@ -176,16 +197,17 @@ class _Writer:
         self.ids = [reaction.id for reaction in self.reactions.reactions]
         self.words = words_of(self.feed.batch)
         self.temperature = float(self.states.temperature[0])
+        self.measured = question.account
 
     def answer(self) -> Answer:
         problem, states, edge = self.problem, self.states, self.edge
-        reach = self.reached.range
+        reach, own = self.reached.range, self.feed.volumetric_flow
         result: Json = {
             "key": self.names[problem.key],
             "hold": problem.hold,
             "gas_model": self.question.gas_model,
-            "temperature": edge.number(self.temperature, "temperature"),
-            "pressure": self._number(states.pressure[0], "pressure"),
+            "temperature": as_read(edge.number(self.temperature, "temperature")),
+            "pressure": as_read(self._number(states.pressure[0], "pressure")),
             "conversion": edge.number(float(self.reached.conversion[0]), "dimensionless"),
             "largest_conversion": edge.number(reach.largest, "dimensionless"),
             "smallest_conversion": edge.number(reach.smallest + 0.0, "dimensionless"),
@@ -195,8 +217,9 @@ class _Writer:
                 self.feed.flows,
                 self.feed.temperature,
                 self.feed.pressure,
-                self.reached.compressibility_of_feed,
-                self._inlet_volume(),
+                self.feed.compressibility,
+                None if own is None else float(own),
+                self.reached.heat_capacities[0],
             ),
             "outlet": self._stream(
                 states.amounts[0],
@@ -204,10 +227,11 @@ class _Writer:
                 _finite(states.pressure[0]),
                 float(states.compressibility[0]),
                 _finite(states.volume[0]),
+                self.reached.heat_capacities[1],
             ),
             "equilibrium_constants": self._constants(),
         }
-        if self.question.gas is not None:
+        if self.problem.gas is not None:
             inside = np.flatnonzero(self.feed.in_phase).tolist()
             each = states.ln_fugacity_coefficients[0].tolist()
             result["fugacity_coefficients"] = {
@@ -219,6 +243,8 @@ class _Writer:
         result["heat"] = self._heat()
         if self.approach is not None:
             result["approach"] = self._approach()
+        if self.measured is not None:
+            result["measured"] = self._measured(self.measured)
         if problem.values is not None:
             result["sweep"] = self._sweep().document()
         assumed = [
@@ -258,13 +284,6 @@ class _Writer:
             return {"value": pressure / STANDARD_PRESSURE, "unit": "bar"}
         return self.edge.number(pressure, "pressure")
 
-    def _inlet_volume(self) -> float | None:
-        own = self.feed.volumetric_flow
-        if own is None:
-            return None
-        ratio = self.reached.compressibility_of_feed / self.feed.compressibility
-        return float(own) * (ratio if self.feed.phase == "gas" else 1.0)
-
     def _stream(
         self,
         flows: FloatArray,
@@ -272,19 +291,29 @@ class _Writer:
         pressure: float | None,
         z: float,
         volume: float | None,
+        heat_capacity: float,
     ) -> Json:
-        return write_stream(
+        there = bool(flows[self.feed.in_phase].any())
+        stream = write_stream(
             self.edge,
             self.names,
             flows,
             self.feed.in_phase,
             batch=self.feed.batch,
-            volume=volume if self._volume_known() else None,
+            volume=volume if there and self._volume_known() else None,
             temperature=temperature,
             pressure=pressure,
             compressibility=z,
-            fractions=not self.feed.solvent_unknown,
+            fractions=there and not self.feed.solvent_unknown,
         )
+        for name in ("temperature", "pressure"):
+            if name in stream:
+                stream[name] = as_read(stream[name])
+        if np.isfinite(heat_capacity):
+            name = "heat_capacity" if self.feed.batch else "heat_capacity_flow"
+            dimension = "molar_heat_capacity" if self.question.per_mole_of_key else name
+            stream[name] = self.edge.number(heat_capacity, dimension)
+        return stream
 
     def _volume_known(self) -> bool:
         return self.feed.phase == "gas" or self.feed.volumetric_flow is not None
@@ -374,6 +403,46 @@ class _Writer:
         each = zip(self.ids, self.approach[0], strict=True)
         return {id_: write_approach(found, self.edge.uncertain) for id_, found in each}
 
+    def _measured(self, found: Estimate) -> Json:
+        of = conversion_results(found, closures=False).conversion
+        value = float(of.value)
+        said: Json = {
+            "conversion": self.edge.uncertain(value, float(of.u), "dimensionless")
+            if np.isfinite(value)
+            else None
+        }
+        outlet = self.question.outlet
+        assert outlet is not None
+        if np.isfinite(outlet.flows).all():
+            forms = np.concatenate([outlet.forms, outlet.forms.sum(axis=0)[None]])
+            u = found.u_of(forms)
+            pressure = None if outlet.pressure is None else outlet.pressure.value
+            said["outlet"] = write_stream(
+                self.edge,
+                self.names,
+                outlet.flows,
+                self.feed.in_phase,
+                batch=self.feed.batch,
+                volume=self._volume_of(outlet),
+                temperature=outlet.temperature.value,
+                pressure=pressure,
+                compressibility=outlet.compressibility,
+                fractions=not self.feed.solvent_unknown,
+                u=u[:-1],
+                total_u=float(u[-1]),
+            )
+        said["reconciliation"] = write_reconciliation(self.edge, found)
+        return said
+
+    def _volume_of(self, outlet: MeasuredOutlet) -> float | None:
+        """Return the volumetric flow of the outlet measured, m3/s (batch: m3), where known."""
+        if self.feed.phase == "liquid":
+            return outlet.volume
+        if outlet.pressure is None:
+            return None
+        moles = float(outlet.flows[self.feed.in_phase].sum()) * outlet.compressibility
+        return moles * GAS_CONSTANT * outlet.temperature.value / outlet.pressure.value
+
     def _sources(self) -> Json:
         used: dict[str, StandardProperties] = {}
         for constant in self.problem.constants:
@@ -382,11 +451,11 @@ class _Writer:
         if self.problem.properties is not None and self.reached.heat is not None:
             used = {p.substance: used.get(p.substance, p) for p in self.problem.properties} | used
         told = write_sources(self.edge, used.values())
-        gas = self.question.gas
+        gas = self.problem.gas
         return told if gas is None else write_gas(self.edge, gas, told)
 
     def _gas_words(self) -> str:
-        return gas_words(self.question.gas, "fugacities and volumes")
+        return gas_words(self.problem.gas, "fugacities and volumes")
 
     def _sweep(self) -> Table:
         """Return the states of the sweep, a row each; None where there is no answer."""
@@ -401,7 +470,8 @@ class _Writer:
                 values = self.problem.values
             elif name in self.problem.hold:
                 values = np.full(len(values), each[0])
-            columns[name] = cells((values - scale.offset) / scale.factor)
+            read = cells((values - scale.offset) / scale.factor)
+            columns[name] = [None if v is None else float(f"{v:.14g}") for v in read]
             units[name] = scale.unit
         columns["conversion"] = cells(self.reached.conversion[1:])
         if self.reactions.rank == len(self.ids):
@@ -411,13 +481,14 @@ class _Writer:
         inside = self.feed.in_phase
         amounts = states.amounts[1:]
         total = amounts[:, inside].sum(axis=1)
+        total[total == 0] = np.nan
         for i, name in enumerate(self.names):
             if inside[i] and not self.feed.solvent_unknown:
                 columns[f"mole fraction {name}"] = cells(amounts[:, i] / total)
             else:
                 columns[f"{self.words.flow} {name}"] = cells(amounts[:, i] / flow.factor)
                 units[f"{self.words.flow} {name}"] = flow.unit
-        if self.question.gas is not None:
+        if self.problem.gas is not None:
             columns["compressibility"] = cells(states.compressibility[1:])
         if self.reached.heat is not None and self.problem.hold.startswith("temperature"):
             scale = edge.scales[self._heat_dimension]
@@ -426,13 +497,29 @@ class _Writer:
         return Table(columns, units)
 
     def _table(self) -> Table:
-        """Return the sweep, or else the composition, a row for each substance."""
-        return self._composition() if self.problem.values is None else self._sweep()
+        """Return the sweep, or else the composition, a row for each substance.
+
+        What there is one of, the approach of a reaction, stands in every row.
+        """
+        table = self._composition() if self.problem.values is None else self._sweep()
+        if self.approach is None:
+            return table
+        columns, units = dict(table.columns), dict(table.units)
+        rows = len(next(iter(columns.values())))
+        kelvin = self.edge.scales["temperature_difference"]
+        for id_, found in zip(self.ids, self.approach[0], strict=True):
+            for name, value in (
+                (f"approach {id_}", None if found is None else found.approach),
+                (f"u of approach {id_}", None if found is None else found.u),
+            ):
+                columns[name] = [None if value is None else value / kelvin.factor] * rows
+                units[name] = kelvin.unit
+        return Table(columns, units)
 
     def _composition(self) -> Table:
         flow = self.edge.scales[self.words.flow_dimension]
         amounts, inside = self.states.amounts[0], self.feed.in_phase
-        fractions = np.where(inside, amounts, np.nan) / amounts[inside].sum()
+        fractions = np.where(inside, amounts, np.nan) / (amounts[inside].sum() or np.nan)
         if self.feed.solvent_unknown:
             fractions = np.full_like(fractions, np.nan)
         word = self.words.flow
@@ -442,7 +529,11 @@ class _Writer:
             f"equilibrium {word}": (amounts / flow.factor).tolist(),
             "mole fraction": cells(fractions),
         }
-        return Table(columns, {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit})
+        units = {f"inlet {word}": flow.unit, f"equilibrium {word}": flow.unit}
+        if self.question.outlet is not None:
+            columns[f"measured {word}"] = cells(self.question.outlet.flows / flow.factor)
+            units[f"measured {word}"] = flow.unit
+        return Table(columns, units)
 
     def _page(self) -> Page:
         edge, problem = self.edge, self.problem
@@ -461,6 +552,9 @@ class _Writer:
             if heat is not None and name in heat:
                 numbers.append((words, heat[name]))
         verdict = f"At {at} the equilibrium conversion of {key} is {100 * conversion:.4g} %."
+        if self.measured is not None:
+            of_measured = self._measured(self.measured)["conversion"]
+            numbers.append((f"measured conversion of {key}", of_measured))
         if self.approach is not None:
             for id_, of in self._approach().items():
                 numbers.append((f"approach of {id_}", None if of is None else of["approach"]))

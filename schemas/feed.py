@@ -219,6 +219,11 @@ class MeteredStreamResultSchema(OpenSchema):
     volumetric_flow = number("At the stream's conditions; null where it is not known.")
     volume = number("Of a batch, at its conditions; null where it is not known.")
     total = number("Null where the readings do not tell it.", required=True)
+    heat_capacity_flow = number(
+        "At constant pressure and composition, all its substances together; per mole of key, where"
+        " no reading tells how much flows. Where enthalpies are known."
+    )
+    heat_capacity = number("Of a batch, as 'heat_capacity_flow' is of a flow.")
     phase_total = number("Of the stream's own phase, where substances outside it travel along.")
     species = numbers_by_name(SpeciesFlowSchema, required=True)
 

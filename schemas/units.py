@@ -15,7 +15,6 @@ from fractions import Fraction
 from functools import cache, lru_cache
 from typing import Any, TypeVar
 
-import numpy as np
 import pint
 
 from core.arrays import FloatArray
@@ -46,13 +45,14 @@ DEFAULT_UNITS: dict[str, str] = {
     "reaction_rate_per_mass": "mol/(kg h)",
     "energy": "MJ",
     "power": "kW",
+    "heat_capacity": "kJ/K",
+    "heat_capacity_flow": "kW/K",
     "molar_energy": "kJ/mol",
     "molar_heat_capacity": "J/(mol K)",
     "length": "m",
     "area": "m2",
     "viscosity": "mPa s",
     "heat_transfer_per_volume": "kW/(m3 K)",
-    "heat_capacity_flow": "kW/K",
     "mass_per_molar_flow": "kg h/kmol",
 }
 """The unit of each dimension where neither the request nor its fields name one."""
@@ -142,21 +142,9 @@ def to_si(value: Value, unit: Unit, *, atmospheric_pressure: float = STANDARD_AT
     return value * unit.factor + (atmospheric_pressure if unit.gauge else unit.offset)
 
 
-def from_si(
-    value: Value, unit: Unit, *, atmospheric_pressure: float = STANDARD_ATMOSPHERE
-) -> Value:
-    """Return the value in the unit; the reverse of :func:`to_si`."""
-    return (value - (atmospheric_pressure if unit.gauge else unit.offset)) / unit.factor
-
-
 def difference_to_si(value: Value, unit: Unit) -> Value:
     """Return a difference in SI: where the unit has its zero plays no part."""
     return value * unit.factor
-
-
-def difference_from_si(value: Value, unit: Unit) -> Value:
-    """Return a difference in the unit; the reverse of :func:`difference_to_si`."""
-    return value / unit.factor
 
 
 def is_difference_safe(unit: Unit) -> bool:
@@ -235,36 +223,6 @@ def spell(parts: Sequence[tuple[str, float]]) -> str:
     if not denominator:
         return numerator
     return f"{numerator}/({denominator})" if len(below) > 1 else f"{numerator}/{denominator}"
-
-
-def spell_exponents(exponents: Sequence[float], like: str | None = None) -> str:
-    """Return a readable unit of the given dimension.
-
-    Parameters
-    ----------
-    exponents : sequence of 5 floats
-        Of (kg, m, s, K, mol).
-    like : str, optional
-        A unit whose names are used as far as they reach: like ``kmol/(m3 h bar)``,
-        a reciprocal time is ``1/h`` and a reciprocal pressure ``1/bar``. Without it the
-        names are those of the SI, with J, W and Pa where they make it shorter.
-
-    Raises
-    ------
-    UnknownUnit
-        ``like`` is not a known unit.
-    """
-    own: list[str] = []
-    if like is not None:
-        find_unit(like)
-        plain = (_TABLE[name].row.difference or name for name, _ in read_factors(tidy(like)))
-        own = [name for name in plain if name in _TABLE]
-    choices = [
-        _in_terms_of(exponents, first, own)
-        for names in (own, [])
-        for first in (names, [*names, "J"], [*names, "W"], [*names, "Pa"])
-    ]
-    return spell(min(choices, key=_clumsiness))
 
 
 # --- reading ---------------------------------------------------------------------------------
@@ -383,8 +341,6 @@ def _basis(factors: list[Factor]) -> Basis | None:
 
 # --- spelling --------------------------------------------------------------------------------
 
-_ORDER_ABOVE = ("J", "W", "Pa", "kg", "mol", "m", "s", "K")
-_ORDER_BELOW = ("kg", "mol", "m", "s", "K", "J", "W", "Pa")
 _SQUARED_AND_CUBED = {"m", "dm", "cm", "mm", "in", "ft"}
 
 
@@ -407,36 +363,6 @@ def _raised(name: str, power: Fraction) -> str:
     if power.denominator <= 12 and abs(power.numerator) <= 99:
         return f"{base}^({power})"
     return f"{base}^{float(power):.6f}"
-
-
-def _in_terms_of(
-    exponents: Sequence[float], first: Iterable[str], own: Sequence[str]
-) -> list[tuple[str, float]]:
-    """Return the powers of names that give a dimension, ``first`` used as far as they reach."""
-    chosen: list[str] = []
-    for name in (*first, "mol", "m", "s", "K", "kg"):
-        tried = np.array([_TABLE[one].exponents for one in (*chosen, name)], dtype=float)
-        if np.linalg.matrix_rank(tried) == len(tried):
-            chosen.append(name)
-    columns = np.array([_TABLE[name].exponents for name in chosen], dtype=float).T
-    solved = np.linalg.solve(columns, np.array(exponents, dtype=float))
-    powers = [(name, float(_fraction(power))) for name, power in zip(chosen, solved, strict=True)]
-
-    def place(part: tuple[str, float]) -> int:
-        name, power = part
-        if name in own:
-            return -len(own) + own.index(name)
-        return (_ORDER_ABOVE if power > 0 else _ORDER_BELOW).index(name)
-
-    return sorted((part for part in powers if part[1]), key=place)
-
-
-def _clumsiness(parts: Sequence[tuple[str, float]]) -> tuple[float, float]:
-    # A broken power of a mass is a pressure in disguise; the cube root of a litre and a
-    # watt per bar help nobody.
-    broken = sum(2 for name, power in parts if power % (1 if name == "kg" else 0.25))
-    derived = sum(sum(map(abs, _TABLE[name].exponents)) > 3 for name, _ in parts)
-    return len(parts) + broken + max(derived - 1, 0), sum(abs(power) for _, power in parts)
 
 
 # --- naming the nearest ----------------------------------------------------------------------

@@ -24,7 +24,9 @@ def answer(document: Any) -> Answer:
     question, edge = wire.read(document)
     with edge.locating():
         found = estimate_of_gas(question.problem, question.gas)
-        draws = None if question.sampling is None else monte_carlo(found, question.sampling)
+        draws = None
+        if question.sampling is not None:
+            draws = monte_carlo(found, question.sampling, question.gas)
         results = conversion_results(
             found,
             basis=question.basis,

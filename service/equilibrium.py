@@ -25,6 +25,8 @@ def answer(document: Any) -> Answer:
         reached = bring_to_equilibrium(question.problem)
         approach = None
         if question.outlet is not None:
-            constants = question.problem.stated_constants
-            approach = approaches(constants, question.outlet, question.problem.equation)
+            problem = question.problem
+            approach = approaches(
+                problem.stated_constants, question.outlet, problem.gas, problem.witness
+            )
     return write(question, reached, approach, edge)

@@ -592,7 +592,7 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
 _NULL_NOTES: dict[str, frozenset[str]] = {
     "heat": frozenset({"heat-not-known"}),
     "approach": frozenset({"approach-not-known"}),
-    "concentration": frozenset({"concentrations-not-known", "per-mole-of-key"}),
+    "concentration": frozenset({"concentrations-not-known", "per-mole-of-key", "nothing-in-phase"}),
 }
 
 

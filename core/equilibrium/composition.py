@@ -31,6 +31,7 @@ class Status(IntEnum):
     FOUND = 0
     NOT_CONVERGED = 1
     MIXTURE_VANISHED = 2
+    """The pure phases hold everything: what is found of them, and none of the mixture."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -161,11 +162,13 @@ def find(task: Task, start: Composition | None = None) -> Composition:
         again = [_solve_group(search, p, rows) for p, rows in _groups(search.there[todo], todo)]
         todo = np.concatenate(again)
         todo = todo[search.changes[todo] <= most_changes]
+    gone = search.status == Status.MIXTURE_VANISHED
+    search.ln_amounts[np.ix_(gone, task.in_mixture)] = -np.inf
     # Nothing is answered that does not balance.
     conserved = np.abs(task.space.conserved)
     off = np.abs((np.exp(search.ln_amounts) - fed) @ task.space.conserved.T)
     bad = ~(off <= _BALANCED * ((np.exp(search.ln_amounts) + fed) @ conserved.T)).all(axis=1)
-    search.status[bad & (search.status == Status.FOUND)] = Status.NOT_CONVERGED
+    search.status[bad] = Status.NOT_CONVERGED
     ln_amounts = search.ln_amounts + np.log(scale)
     return Composition(ln_amounts, search.status, search.iterations)
 
@@ -184,14 +187,44 @@ def _groups(patterns: BoolArray, rows: IntArray) -> Iterator[tuple[BoolArray, In
 
 
 def _resume(search: _Search, start: Composition, scale: FloatArray) -> None:
-    """Start from what was found before, where it was found."""
+    """Start from what was found before, where it was found, without the pure phases it was without.
+
+    One of those that should be there now comes back as any does that was left out.
+    """
     ln_amounts = start.ln_amounts - np.log(scale)
-    good = start.status == Status.FOUND
     missing = search.reachable & np.isneginf(ln_amounts)
-    good &= ~(missing & search.task.in_mixture).any(axis=1)
-    good &= ~missing.any(axis=1)
-    search.warm[good] = True
-    search.ln_amounts[good] = ln_amounts[good]
+    good = (start.status == Status.FOUND) & ~(missing & search.task.in_mixture).any(axis=1)
+    width = missing.shape[1]
+    for both, rows in _groups(
+        np.concatenate([missing, search.reachable], axis=1)[good], np.flatnonzero(good)
+    ):
+        pattern = both[:width]
+        if not _without(search, np.flatnonzero(pattern), rows):
+            continue
+        search.warm[rows] = True
+        search.ln_amounts[rows] = ln_amounts[rows]
+        if pattern.any():
+            search.amounts[rows] = np.exp(ln_amounts[rows])
+
+
+def _without(search: _Search, phases: IntArray, rows: IntArray) -> bool:
+    """Leave pure phases out of what is held and there; tell whether reactions can use them up."""
+    still = ~search.reachable[rows[0]]
+    held, done = search.held[rows], []
+    for phase in phases.tolist():
+        steps = search.task.space.steps(still)
+        taking = steps.nu[:, phase]
+        if not taking.any():
+            return False
+        row = steps.nu[np.argmax(np.abs(taking))]
+        held = held - (held[:, phase] / row[phase])[:, None] * row
+        held[:, phase] = 0.0
+        still = still.copy()
+        still[phase] = True
+        done.append(phase)
+    search.held[rows] = held
+    search.there[np.ix_(rows, done)] = False
+    return True
 
 
 def _solve_group(search: _Search, pattern: BoolArray, rows: IntArray) -> IntArray:

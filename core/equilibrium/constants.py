@@ -37,21 +37,6 @@ class Enthalpies(Protocol):
 
 
 @dataclass(frozen=True, eq=False)
-class KnownConstants:
-    """ln K known for each sample, whatever its temperature; shape (N, R)."""
-
-    values: FloatArray
-
-    def ln_k(
-        self,
-        temperature: FloatArray,  # noqa: ARG002 - the protocol's signature
-        rows: IntArray,
-    ) -> FloatArray:
-        """Return ln K, see :class:`Constants`."""
-        return self.values[rows]
-
-
-@dataclass(frozen=True, eq=False)
 class StatedConstants:
     """Constants of the forms that a caller states, one for each reaction.
 

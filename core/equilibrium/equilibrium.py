@@ -20,15 +20,16 @@ from core.equilibrium.problem import Equilibrium, EquilibriumProblem
 from core.equilibrium.reaction_space import ReactionSpace, reaction_space
 from core.errors import Amount, Fault, refuse
 from core.numerics.roots import find_root
-from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import GasState
 
 CONSISTENT = 1e-6
 """|sum w ln K| of reactions that add up to nothing, below which their constants agree."""
 _FUGACITIES_SETTLED = 5e-12
 _MOST_ROUNDS = 80
+_ROUNDS_TO_BRACKET = 25  # where another temperature will do as well
 _TELLING = 1e-4  # of all matter: an extent from which on any change tells it well
 _LEAST_SIZE = 1e-290  # of a trace, whose reciprocal times a coefficient is still a number
+_JUMP = 1e-6  # of the enthalpies fed: an energy that no temperature has
 _RUNGS = 30  # between the bounds of a temperature that is sought, where there is no answer at one
 _HALVINGS = 20
 
@@ -47,8 +48,8 @@ def solve_equilibrium(problem: EquilibriumProblem) -> Equilibrium:
     Refused
         For the problem as a whole: ``inconsistent-constants``, ``no-flow``,
         ``flow-negative``, ``compute-budget``. What concerns a sample is in ``faults``:
-        ``equilibrium-not-found``, ``mixture-vanishes``, ``no-such-temperature``,
-        ``inconsistent-constants``.
+        ``equilibrium-not-found``, ``mixture-vanishes``, ``not-a-gas``,
+        ``no-such-temperature``, ``inconsistent-constants``.
     """
     _check_feed(problem)
     solver = _Solver(problem)
@@ -131,6 +132,8 @@ class _Solver:
             np.zeros(count, dtype=np.intp),
         )
         self.ln_gamma = np.zeros(problem.feed.shape)
+        self.liquid: BoolArray = np.zeros(count, dtype=bool)
+        self.most_rounds = _MOST_ROUNDS
 
     @cached_property
     def per_total(self) -> bool:
@@ -205,9 +208,8 @@ class _Solver:
         if problem.mixture.equation is None or problem.mixture.phase == "liquid":
             found = find(task, self.last.samples(rows))
             self.keep(rows, found)
-            return _Point(
-                found, np.zeros(problem.feed[rows].shape), None, found.status == Status.FOUND
-            )
+            settled = found.status != Status.NOT_CONVERGED
+            return _Point(found, np.zeros(problem.feed[rows].shape), None, settled)
         return self.with_fugacities(task, temperature, rows)
 
     def keep(self, rows: IntArray, found: Composition) -> None:
@@ -226,7 +228,7 @@ class _Solver:
         ln_gamma = np.zeros(task.feed.shape)
         iterations = np.zeros(len(rows), dtype=np.intp)
         previous: tuple[FloatArray, FloatArray] | None = None
-        for _ in range(_MOST_ROUNDS):
+        for _ in range(self.most_rounds):
             if task.budget is not None:
                 task.budget.spend(work_of_state(len(on), task.feed.shape[1]))
             part = replace(task, ln_k=task.ln_k[on] - shift[on], feed=task.feed[on])
@@ -266,7 +268,9 @@ class _Solver:
         equation = self.problem.mixture.equation
         assert equation is not None
         inside = self.in_gas(found.ln_amounts)
-        gas = equation.state(temperature, pressure, inside)
+        gas = equation.state(temperature, pressure, inside, of_gas=True)
+        self.liquid[rows] = settled & gas.liquid_like
+        settled &= ~gas.liquid_like
         if not self.per_total:
             # At such a pressure another root is the stable one: one gas does not fill the volume.
             filled = (
@@ -299,7 +303,7 @@ class _Solver:
         assert equation is not None
         pressure = self.pressure_at(temperature, rows, ln_amounts)
         pressure = np.where(pressure > 0, pressure, np.nan)
-        gas = equation.state(temperature, pressure, self.in_gas(ln_amounts))
+        gas = equation.state(temperature, pressure, self.in_gas(ln_amounts), of_gas=True)
         found = np.zeros(ln_amounts.shape)
         found[:, self.in_mixture] = gas.ln_fugacity_coefficients
         if not self.per_total:
@@ -361,9 +365,34 @@ class _Solver:
             return np.where(sound, energy - wanted[mine], 0.0)
 
         found[rows] = find_root(excess, lower[rows], upper[rows], subject=problem.subject)
+        self.refuse_jumps(found, wanted, rows)
         for at in self.faults:
             found[at] = np.nan
         return found
+
+    def refuse_jumps(self, found: FloatArray, wanted: FloatArray, rows: IntArray) -> None:
+        """Refuse samples whose energy jumps past the one wanted at the temperature found.
+
+        Where pure phases alone fix the pressure of the gas it is there or gone all at once.
+        """
+        energy, sound = self.energy_at(found[rows], rows)
+        enthalpies = self.problem.enthalpies
+        assert enthalpies is not None
+        size = (np.abs(enthalpies.enthalpies(found[rows], rows)) * self.problem.feed[rows]).sum(1)
+        for at in np.flatnonzero(sound & (np.abs(energy - wanted[rows]) > _JUMP * size)).tolist():
+            row = int(rows[at])
+            self.faults.setdefault(
+                row,
+                Fault(
+                    "equilibrium-not-found",
+                    self.problem.subject,
+                    "at {temperature} pure solids and liquids alone fix the pressure of the gas, so"
+                    " that it is there or gone all at once, and some part of it would match the"
+                    " energy of the feed. Hold that temperature a little higher or lower, or add an"
+                    " inert gas",
+                    {"temperature": Amount(float(found[row]), "temperature")},
+                ),
+            )
 
     def last_sound(
         self, wanted: FloatArray, rows: IntArray, first: float, towards: float
@@ -381,6 +410,7 @@ class _Solver:
             Whether there is an answer that leaves the wanted energy beyond it.
         """
         t = np.full(len(rows), first)
+        self.most_rounds = _ROUNDS_TO_BRACKET
         energy, sound = self.energy_at(t, rows)
         excess = energy - wanted
         side = np.sign(towards - first)
@@ -391,7 +421,12 @@ class _Solver:
                 break
             rung = first + (towards - first) * min(step + 1, _RUNGS) / _RUNGS
             trial = np.where(np.isnan(good[live]), rung, 0.5 * (bad[live] + good[live]))
-            energy, fine = self.energy_at(trial, rows[live])
+            energy, fine = np.full(len(live), np.nan), np.zeros(len(live), dtype=bool)
+            first_look = np.isnan(good[live])
+            for part, rounds in ((first_look, _ROUNDS_TO_BRACKET), (~first_look, _MOST_ROUNDS)):
+                if part.any():
+                    self.most_rounds = rounds
+                    energy[part], fine[part] = self.energy_at(trial[part], rows[live[part]])
             bad[live[~fine]] = trial[~fine]
             here = live[fine]
             good[here] = t[here] = trial[fine]
@@ -401,6 +436,7 @@ class _Solver:
             if step + 1 >= _RUNGS:
                 on &= ~np.isnan(good[live])
             live = live[on]
+        self.most_rounds = _MOST_ROUNDS
         return t, excess, sound
 
     def not_found(self, row: int, temperature: float) -> Fault:
@@ -411,8 +447,18 @@ class _Solver:
                 "mixture-vanishes",
                 self.problem.subject,
                 "at {temperature} nothing is left in the gas: the pure solids and liquids hold"
-                " everything at this pressure. Hold the volume, lower the pressure, or add an"
-                " inert gas",
+                " everything at this pressure, as far as can be told without a gas to take"
+                " fugacities from. Take the gas as ideal, hold the volume, lower the pressure, or"
+                " add an inert gas",
+                facts,
+            )
+        if self.liquid[row]:
+            return Fault(
+                "not-a-gas",
+                self.problem.subject,
+                "at {temperature} the equation of state has what comes to equilibrium as a liquid"
+                " only: correct temperature or pressure, or declare the phase of what is condensed"
+                " under 'species'",
                 facts,
             )
         return Fault(
@@ -435,7 +481,6 @@ class _Solver:
         iterations = np.zeros(count, dtype=np.intp)
         excess = np.full((count, len(nu)), np.nan)
         stopped: BoolArray = np.zeros((count, len(nu)), dtype=bool)
-        condenses: BoolArray = np.zeros(count, dtype=bool)
         if len(good):
             point = self.at(temperature[good], good)
             for at in np.flatnonzero(~point.settled).tolist():
@@ -453,14 +498,6 @@ class _Solver:
             if problem.mixture.phase == "gas" and self.per_total:
                 amount = self.in_gas(ln_n).sum(axis=1)
                 volume[good] = z[good] * amount * GAS_CONSTANT * temperature[good] / pressure[good]
-            if problem.mixture.equation is not None and point.gas is not None:
-                here = good[sound]
-                condenses[here] = would_condense(
-                    problem.mixture.equation,
-                    temperature[here],
-                    pressure[here],
-                    self.in_gas(ln_n[sound]),
-                )
             excess[good], stopped[good] = self.affinities(temperature[good], good, point)
             bad = good[~sound]
             for values in (ln_amounts, ln_phi, pressure, volume, z, excess):
@@ -489,7 +526,6 @@ class _Solver:
             volume,
             z,
             ln_phi,
-            condenses,
             share.max(axis=1, initial=0.0),
             iterations,
             self.faults,

@@ -25,13 +25,17 @@ from core.rates.equilibrium_constant import (
 )
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
-from core.real_gas.cubic import CubicEquation
-from core.real_gas.remarks import remark_on_constants, remark_on_gas
+from core.real_gas.equation import KnownGas
+from core.real_gas.remarks import remark_on_constants
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import HeatsOfReaction, temperatures_known
-from core.thermochemistry.reaction_properties import ReactionProperties, beyond_range
+from core.thermochemistry.reaction_properties import (
+    ReactionProperties,
+    beyond_range,
+    contradictions,
+)
 
 Over = Literal["temperature", "pressure"]
 
@@ -53,14 +57,15 @@ class FeedAtEquilibrium:
     reactions : ReactionSet
     key : int
     feed : Stream
-        Flows of shape (S,), or the amounts of a batch.
+        Flows of shape (S,), or the amounts of a batch; its compressibility is that by
+        ``gas``, where temperature and pressure are known.
     constants : tuple of EquilibriumConstant, length R
     hold : Hold
     temperature, pressure, volume : float or None
         K, Pa and m3 where they are not those of the feed.
-    equation : CubicEquation or None
+    gas : KnownGas or None
         Of the substances of the gas; None for an ideal one.
-    witness : CubicEquation or None
+    witness : KnownGas or None
         By which an ideal gas is judged, where its constants are known.
     properties : tuple of StandardProperties, length S, or None
         None where a substance's are not known: then no heat is told.
@@ -80,8 +85,8 @@ class FeedAtEquilibrium:
     temperature: float | None = None
     pressure: float | None = None
     volume: float | None = None
-    equation: CubicEquation | None = None
-    witness: CubicEquation | None = None
+    gas: KnownGas | None = None
+    witness: KnownGas | None = None
     properties: tuple[StandardProperties, ...] | None = None
     heats: HeatsOfReaction | None = None
     over: Over | None = None
@@ -113,10 +118,12 @@ class FeedReached:
         Of the key, -.
     range : ConversionRange
         By what is fed, every reaction running both ways.
-    compressibility_of_feed : float
     heat : ndarray, shape (N,), or None
         To be supplied, W (batch: J): the change of enthalpy, or where volume is
         held of internal energy. Zero where that is what is held.
+    heat_capacities : tuple of float
+        Of the feed and of the state asked for, at constant pressure and composition,
+        W/K (batch: J/K); not a number where not known.
     notes : tuple of Note
     """
 
@@ -124,8 +131,8 @@ class FeedReached:
     states: Equilibrium
     conversion: FloatArray
     range: ConversionRange
-    compressibility_of_feed: float
     heat: FloatArray | None
+    heat_capacities: tuple[float, float]
     notes: tuple[Note, ...]
 
 
@@ -162,16 +169,19 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
     count = 1 if problem.values is None else 1 + len(problem.values)
     temperature = _held(problem, "temperature", count)
     pressure = _held(problem, "pressure", count)
-    equation = problem.equation if feed.phase == "gas" else None
-    z = _compressibility(problem, equation)
-    volume = _volume(problem, z)
-    start, faults = _energy_of_feed(problem, temperature, z)
+    volume = _volume(problem)
+    start, faults = _energy_of_feed(problem, temperature)
     adiabatic = not problem.hold.startswith("temperature")
     if adiabatic and start is None:
         raise Refused(faults)
     asked = EquilibriumProblem(
         reactions=reactions,
-        mixture=Mixture(feed.in_phase, feed.phase, STANDARD_PRESSURE, equation),
+        mixture=Mixture(
+            feed.in_phase,
+            feed.phase,
+            STANDARD_PRESSURE,
+            None if problem.gas is None else problem.gas.equation,
+        ),
         feed=np.broadcast_to(feed.flows, (count, len(feed.flows))),
         constants=problem.stated_constants,
         hold=problem.hold,
@@ -198,11 +208,21 @@ def bring_to_equilibrium(problem: FeedAtEquilibrium) -> FeedReached:
         states=states,
         conversion=_conversion(problem, states),
         range=conversion_range(_both_ways(reactions), problem.key, feed.flows),
-        compressibility_of_feed=z,
         heat=None if start is None else _heat(problem, states, start),
+        heat_capacities=(np.nan, np.nan)
+        if start is None
+        else (
+            _heat_capacity(problem, feed.flows, feed.temperature, feed.pressure),
+            _heat_capacity(
+                problem,
+                states.amounts[0],
+                float(states.temperature[0]),
+                float(states.pressure[0]),
+            ),
+        ),
         notes=(),
     )
-    return replace(reached, notes=(*_without_heat(faults), *_notes(reached)))
+    return replace(reached, notes=told_once((*_without_heat(faults), *_notes(reached))))
 
 
 def _conversion(problem: FeedAtEquilibrium, states: Equilibrium) -> FloatArray:
@@ -265,7 +285,7 @@ def _check(problem: FeedAtEquilibrium) -> None:
             " the temperature",
             over=problem.over,
         )
-    if feed.phase == "gas" and feed.compressibility != 1.0:
+    if feed.phase == "gas" and abs(feed.compressibility / _compressibility(problem) - 1) > 1e-9:
         raise refuse(
             "field-not-used",
             ("feed", "compressibility"),
@@ -375,8 +395,8 @@ def _held(problem: FeedAtEquilibrium, name: Over, count: int) -> FloatArray | No
     return held
 
 
-def _volume(problem: FeedAtEquilibrium, z: float) -> float | None:
-    """Return the volume that is held, or of a liquid, m3 or m3/s; ``z`` is that of the feed."""
+def _volume(problem: FeedAtEquilibrium) -> float | None:
+    """Return the volume that is held, or of a liquid, m3 or m3/s."""
     feed = problem.feed
     if feed.phase == "liquid":
         own = feed.volumetric_flow
@@ -407,24 +427,20 @@ def _volume(problem: FeedAtEquilibrium, z: float) -> float | None:
             "volume is held and not known; state it under 'at', or temperature and pressure of the"
             " feed",
         )
-    return float(own) * z
+    return float(own)
 
 
-def _compressibility(problem: FeedAtEquilibrium, equation: CubicEquation | None) -> float:
-    """Return Z of the feed."""
+def _compressibility(problem: FeedAtEquilibrium) -> float:
+    """Return Z that the feed has by its gas model."""
     feed = problem.feed
-    if equation is None or feed.temperature is None or feed.pressure is None:
-        return feed.compressibility
-    state = equation.state(
-        np.array([feed.temperature]),
-        np.array([feed.pressure]),
-        feed.flows[None, feed.in_phase],
-    )
-    return float(state.compressibility[0])
+    if problem.gas is None or feed.temperature is None or feed.pressure is None:
+        return 1.0
+    of = (feed.temperature, feed.pressure, np.where(feed.in_phase, feed.flows, 0.0))
+    return float(problem.gas.known_compressibility(*of, ("feed",)))
 
 
 def _energy_of_feed(
-    problem: FeedAtEquilibrium, temperature: FloatArray | None, z: float
+    problem: FeedAtEquilibrium, temperature: FloatArray | None
 ) -> tuple[float | None, list[Fault]]:
     """Return what energy the feed has, W (batch: J); None, and why, where no heat can be told."""
     feed = problem.feed
@@ -433,7 +449,7 @@ def _energy_of_feed(
     lacking = [
         name
         for name in ("temperature", "pressure")
-        if getattr(feed, name) is None and (name == "temperature" or problem.equation is not None)
+        if getattr(feed, name) is None and (name == "temperature" or problem.gas is not None)
     ]
     if lacking:
         return None, [
@@ -451,7 +467,8 @@ def _energy_of_feed(
         return None, faults
     t = np.array([feed.temperature], dtype=float)
     p = np.array([np.nan if feed.pressure is None else feed.pressure])
-    return float(_energies(problem, feed.flows[None], t, p, np.array([z]))[0]), []
+    z = np.array([feed.compressibility])
+    return float(_energies(problem, feed.flows[None], t, p, z)[0]), []
 
 
 def _beyond_range(problem: FeedAtEquilibrium, temperature: FloatArray | None) -> list[Fault]:
@@ -501,11 +518,30 @@ def _energies(
     if problem.feed.phase == "liquid":
         return total
     gas = flows[:, inside].sum(axis=1)
-    if problem.equation is not None:
-        state = problem.equation.state(temperature, pressure, flows[:, inside])
+    if problem.gas is not None:
+        state = problem.gas.equation.state(temperature, pressure, flows[:, inside], of_gas=True)
         total = total + gas * state.residual_enthalpy
     if problem.hold.endswith("volume"):
         total = total - compressibility * gas * GAS_CONSTANT * temperature
+    return total
+
+
+def _heat_capacity(
+    problem: FeedAtEquilibrium,
+    flows: FloatArray,
+    temperature: float | None,
+    pressure: float | None,
+) -> float:
+    """Return the heat capacity of a stream at constant pressure, W/K (batch: J/K)."""
+    assert problem.heats is not None
+    assert temperature is not None
+    each = [float(cp.at(temperature)) for cp in problem.heats.heat_capacities]
+    total = float(flows @ np.array(each))
+    if problem.gas is not None:
+        inside = flows[problem.feed.in_phase]
+        at = np.array([temperature]), np.array([pressure], dtype=float), inside[None]
+        state = problem.gas.equation.state(*at, of_gas=True)
+        total += float(inside.sum() * state.residual_heat_capacity[0])
     return total
 
 
@@ -540,6 +576,8 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
         for temperature in temperatures
         for note in constant.notes(temperature, constant_subject(reactions, j))
     )
+    if problem.properties is not None and reached.heat is not None:
+        yield from contradictions(problem.properties)
     yield from _remarks_on_heats(reached)
     written_one_way = [r.id for r in reactions.reactions if not r.reversible]
     if written_one_way:
@@ -557,6 +595,17 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
             " does not form",
             subject=("reactions",),
             facts={"reactions": ", ".join(reactions.reactions[j].id for j in stopped.tolist())},
+        )
+    gone = states.amounts[:, problem.feed.in_phase].sum(axis=1) == 0
+    if gone.any():
+        where = "" if gone[0] else " at {count} of {points} points of the sweep"
+        yield Note(
+            "nothing-in-phase",
+            f"nothing is left in the gas at equilibrium{where}: the pure solids and liquids hold"
+            " everything, and there are no mole fractions, no concentrations and no volume",
+            "warning",
+            ("feed",) if gone[0] else ("sweep",),
+            {"count": int(gone.sum()), "points": len(gone) - 1},
         )
     if states.faults:
         row, fault = min(states.faults.items())
@@ -578,23 +627,19 @@ def _notes(reached: FeedReached) -> Iterator[Note]:
     if problem.feed.solvent_unknown:
         yield SOLVENT_UNKNOWN
     yield from fuel_with_oxidant(reactions, problem.feed.flows, ("feed",))
-    equation = problem.equation or problem.witness
-    if problem.feed.phase == "gas" and equation is not None:
-        good = np.flatnonzero(~np.isnan(states.temperature) & ~np.isnan(states.pressure))
-        inside = states.amounts[np.ix_(good, problem.feed.in_phase)]
-        at = states.temperature[good], states.pressure[good], inside
-        ideal = problem.equation is None
-        seen = equation.state(*at)
-        condenses = would_condense(equation, *at) if ideal else states.may_condense[good]
-        yield from remark_on_gas(
-            seen.compressibility, condenses, taken_as_ideal=ideal, subject=("gas_model",)
-        )
+    gas = problem.gas or problem.witness
+    if problem.feed.phase == "gas" and gas is not None:
+        there = states.amounts[:, problem.feed.in_phase].sum(axis=1) > 0
+        there &= ~np.isnan(states.temperature) & ~np.isnan(states.pressure)
+        good = np.flatnonzero(there)
+        at = states.temperature[good], states.pressure[good], states.amounts[good]
+        ideal = problem.gas is None
+        yield from gas.remarks(*at, taken_as_ideal=ideal, subject=("gas_model",))
         if reached.heat is not None:
-            yield from _remarks_on_feed(problem.feed, equation)
+            yield from _remarks_on_feed(problem.feed, gas)
         if ideal:
-            nu = reactions.nu[:, problem.feed.in_phase]
             yield from remark_on_constants(
-                seen.ln_fugacity_coefficients @ nu.T,
+                gas.ln_fugacity_coefficients(*at) @ reactions.nu.T,
                 [reaction.id for reaction in reactions.reactions],
                 ("gas_model",),
             )
@@ -614,12 +659,12 @@ def _remarks_on_heats(reached: FeedReached) -> Iterator[Note]:
         yield from constant.remarks_on_heat(heat, temperature, order, subject)
 
 
-def _remarks_on_feed(feed: Stream, equation: CubicEquation) -> Iterator[Note]:
+def _remarks_on_feed(feed: Stream, gas: KnownGas) -> Iterator[Note]:
     """Remark on a feed whose enthalpy is counted as a gas's while some of it is liquid."""
     if feed.temperature is None or feed.pressure is None:
         return
     at = np.array([feed.temperature]), np.array([feed.pressure])
-    if would_condense(equation, *at, feed.flows[None, feed.in_phase]).any():
+    if would_condense(gas.equation, *at, feed.flows[None, feed.in_phase]).any():
         yield Note(
             "gas-may-condense",
             "at its own temperature and pressure the equation of state has a liquid form out of the"

@@ -20,17 +20,22 @@ the Gibbs energy, which is convex in the extents, does not rise again along it.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from functools import lru_cache
+from threading import Lock
+from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from core.arrays import BoolArray, FloatArray, IntArray
 from core.equilibrium.budget import CALL, Budget
-from core.numerics.linear import solve_stack
+from core.numerics.linear import solve_definite
 
 _EPS = float(np.finfo(float).eps)
 MOST_ITERATIONS = 400
 _SETTLED = 1e-12  # |ln(Q/K)| beyond what rounding leaves
 _NEARLY = 1e-9  # below which that is worth knowing
+_FEW = 12  # substances, whose sets are counted by bits
 _BLOCK = 4096  # samples at a time, so that they stay in the processor's own memory
 _KEPT = np.log(0.05)  # of a major amount, in one step
 _VANISHED = np.log(1e-25)  # of all matter: the mixture
@@ -158,6 +163,32 @@ class _Basis:
         self.changing[rows] = other.changing
 
 
+def _most(x: FloatArray) -> FloatArray:
+    """Return the maximum over the last axis, NaN where one is; fast along so short an axis."""
+    found = x[..., 0].copy()
+    for k in range(1, x.shape[-1]):
+        np.maximum(found, x[..., k], out=found)
+    return found
+
+
+def _total(x: FloatArray) -> FloatArray:
+    """Return the sum over the last axis; fast along so short an axis."""
+    found = x[..., 0].copy()
+    for k in range(1, x.shape[-1]):
+        found += x[..., k]
+    return found
+
+
+def _at(x: FloatArray, places: IntArray) -> FloatArray:
+    """Return the elements of each row (N, S) at places (N, r)."""
+    return x[np.arange(len(x))[:, None], places]
+
+
+def _put(x: FloatArray, places: IntArray, values: FloatArray | float) -> None:
+    """Set the elements of each row (N, S) at places (N, r)."""
+    x[np.arange(len(x))[:, None], places] = values
+
+
 @np.errstate(divide="ignore", invalid="ignore", over="ignore", under="ignore")
 def find_composition(system: System, start: FloatArray) -> Outcome:
     """Find the composition at which every reaction of the system has Q = K.
@@ -203,14 +234,15 @@ def _find_block(system: System, start: FloatArray) -> Outcome:
         if system.budget is not None:
             system.budget.spend(float(len(rows) * r * (r + 10) * width))
         affinity = _affinities(part, basis, ln_n)
-        settled: BoolArray = np.asarray((np.abs(affinity) <= _SETTLED).all(axis=1))
-        near = np.flatnonzero(~settled & (np.abs(affinity) < _NEARLY).all(axis=1))
+        size = _most(np.abs(affinity))
+        settled: BoolArray = np.asarray(size <= _SETTLED)
+        near = np.flatnonzero(~settled & (size < _NEARLY))
         if len(near):
             slack = _SETTLED + _rounding(part.samples(near), basis.samples(near), ln_n[near])
             settled[near] = (np.abs(affinity[near]) <= slack).all(axis=1)
         total = _ln_total(part, ln_n)
         gone = ~settled & (total < _VANISHED) if part.per_total else np.zeros_like(settled)
-        broken = ~np.isfinite(affinity).all(axis=1)
+        broken = ~np.isfinite(size)
         ended = settled | gone | broken
         if ended.any():
             done = rows[ended]
@@ -220,11 +252,12 @@ def _find_block(system: System, start: FloatArray) -> Outcome:
             vanished[rows[gone]] = system.all_from_pure
             on = ~ended
             rows, part, ln_n = rows[on], part.samples(on), ln_n[on]
-            basis, affinity, total = basis.samples(on), affinity[on], total[on]
+            basis, affinity, total, size = basis.samples(on), affinity[on], total[on], size[on]
             if not len(rows):
                 break
-        change = _newton_step(part, basis, ln_n, total, affinity)
-        ln_n, spent = _advance(part, basis, ln_n, affinity, change)
+        ln_minor = _at(ln_n, basis.minor)
+        change = _newton_step(part, basis, ln_n, ln_minor, total, affinity, size)
+        ln_n, spent = _advance(part, basis, ln_n, ln_minor, affinity, size, change)
         if (spent >= 0).any():
             out = spent >= 0
             done = rows[out]
@@ -248,8 +281,99 @@ def _choose(system: System, ln_n: FloatArray) -> _Basis:
     r = len(system.nu)
     if system.budget is not None:
         system.budget.spend(1.5 * count * r * r * (width + r) + 0.2 * r * CALL)
-    weight = np.where(system.in_mixture, ln_n, np.inf)
-    lead = np.broadcast_to(system.nu, (count, r, width)).copy()
+    # A pure phase only where there is nothing else.
+    weight = np.where(system.in_mixture, np.minimum(ln_n, 1e299), 1e300)
+    if width <= _FEW and count > 1:
+        bases = _bases_of(system.nu.tobytes(), system.nu.shape)
+        which = bases.of_order(np.argsort(weight, axis=1, kind="stable"))
+        minor, nu, of_major, mix, major, changing = (of[which] for of in bases.chosen)
+    else:
+        minor, nu, of_major, mix, major, changing = _eliminated(system.nu, weight)
+    ln_k = np.einsum("nij,nj->ni", mix, system.ln_k)
+    fixed = _conserved(system.held, np.exp(ln_n), minor, of_major, major)
+    return _Basis(minor, nu, of_major, ln_k, fixed, changing)
+
+
+class _Bases:
+    """The sets of minor substances of one system of reactions met so far.
+
+    The scarcest ones that are independent follow from the order of the amounts
+    alone, and of sets there are few, so that each is worked out once.
+
+    Attributes
+    ----------
+    chosen : tuple of ndarray
+        What :func:`_eliminated` returns, for one set after the other.
+    """
+
+    def __init__(self, nu: FloatArray) -> None:
+        self.nu = nu
+        self.width = nu.shape[1]
+        # By substance and by the set that it would join, a bit for each of its substances.
+        self.independent = np.full((self.width, 1 << self.width), -1, dtype=np.int8)
+        self.place = np.full(1 << self.width, -1, dtype=np.intp)
+        self.chosen: tuple[NDArray[Any], ...] = ()
+        self.lock = Lock()
+
+    def of_order(self, order: IntArray) -> IntArray:
+        """Return which of the sets is that of each order, scarcest first, (N, S)."""
+        state = np.zeros(len(order), dtype=np.intp)
+        for substance in order.T:
+            joins = self.independent[substance, state]
+            new = np.flatnonzero(joins < 0)
+            if len(new):
+                both = np.unique(substance[new] << self.width | state[new])
+                for s, before in zip(
+                    (both >> self.width).tolist(),
+                    (both & ((1 << self.width) - 1)).tolist(),
+                    strict=True,
+                ):
+                    self.independent[s, before] = self._adds(before, s)
+                joins = self.independent[substance, state]
+            state = np.where(joins > 0, state | (1 << substance), state)
+        unknown = np.unique(state[self.place[state] < 0]).tolist()
+        if unknown:
+            # Requests are answered by several threads.
+            with self.lock:
+                for one in unknown:
+                    self._add(one)
+        return self.place[state]
+
+    def _add(self, state: int) -> None:
+        """Work a set out, if that was not done meanwhile."""
+        if self.place[state] >= 0:
+            return
+        weight = np.array([[0.0 if state >> i & 1 else 1.0 for i in range(self.width)]])
+        found = _eliminated(self.nu, weight)
+        known = len(self.chosen[0]) if self.chosen else 0
+        self.chosen = (
+            tuple(np.concatenate(pair) for pair in zip(self.chosen, found, strict=True))
+            if known
+            else found
+        )
+        self.place[state] = known
+
+    def _adds(self, state: int, substance: int) -> bool:
+        """Whether a substance is independent of those of a set."""
+        columns = [i for i in range(self.width) if state >> i & 1]
+        part = self.nu[:, [*columns, substance]]
+        return bool(np.linalg.matrix_rank(part) > len(columns))
+
+
+@lru_cache(maxsize=64)
+def _bases_of(nu: bytes, shape: tuple[int, int]) -> _Bases:
+    return _Bases(np.frombuffer(nu).reshape(shape))
+
+
+def _eliminated(nu: FloatArray, weight: FloatArray) -> tuple[NDArray[Any], ...]:
+    """Return the reactions that form the minor substances, by weights (N, S), the least first.
+
+    Minor substances (N, r), their reactions (N, r, S), what these make and use of major
+    ones, how the reactions given make them up (N, r, r), which are major and which change (N, S).
+    """
+    count, width = weight.shape
+    r = len(nu)
+    lead = np.broadcast_to(nu, (count, r, width)).copy()
     lead = np.concatenate([lead, np.broadcast_to(np.eye(r), (count, r, r))], axis=2)
     free = np.ones((count, width), dtype=bool)
     minor = np.zeros((count, r), dtype=np.intp)
@@ -257,8 +381,7 @@ def _choose(system: System, ln_n: FloatArray) -> _Basis:
     for k in range(r):
         reach = np.abs(lead[:, k:, :width])
         possible = free & (reach.max(axis=1) > 1e-9)
-        # Of the possible ones the scarcest; a pure phase only where there is nothing else.
-        column = np.argmin(np.where(possible, np.minimum(weight, 1e300), np.inf), axis=1)
+        column = np.argmin(np.where(possible, weight, np.inf), axis=1)
         pivot = k + np.argmax(reach[at, :, column], axis=1)
         row = lead[at, pivot]
         lead[at, pivot] = lead[:, k]
@@ -268,11 +391,9 @@ def _choose(system: System, ln_n: FloatArray) -> _Basis:
         minor[:, k] = column
         free[at, column] = False
     lead[np.abs(lead) < 1e-11] = 0.0
-    nu, mix = lead[:, :, :width], lead[:, :, width:]
-    of_major = np.where(free[:, None, :], nu, 0.0)
-    ln_k = (mix @ system.ln_k[:, :, None])[:, :, 0]
-    fixed = _conserved(system.held, np.exp(ln_n), minor, of_major, free)
-    return _Basis(minor, nu, of_major, ln_k, fixed, (of_major != 0).any(axis=1))
+    own, mix = lead[:, :, :width], lead[:, :, width:]
+    of_major = np.where(free[:, None, :], own, 0.0)
+    return minor, own, of_major, mix, free, (of_major != 0).any(axis=1)
 
 
 def _conserved(
@@ -286,7 +407,7 @@ def _conserved(
     """
     found = []
     for n in (held, amounts):
-        part = np.take_along_axis(n, minor, axis=1)[:, None, :]
+        part = _at(n, minor)[:, None, :]
         value = n - (part @ of_major)[:, 0]
         size = np.abs(n) + (np.abs(part) @ np.abs(of_major))[:, 0]
         found.append((value, 8 * _EPS * size))
@@ -297,9 +418,9 @@ def _conserved(
 
 
 def _ln_total(system: System, ln_n: FloatArray) -> FloatArray:
-    ln_mixture = ln_n[:, system.in_mixture]
-    most = ln_mixture.max(axis=1)
-    total: FloatArray = most + np.log(np.exp(ln_mixture - most[:, None]).sum(axis=1))
+    ln_mixture = ln_n if system.in_mixture.all() else ln_n[:, system.in_mixture]
+    most = _most(ln_mixture)
+    total: FloatArray = most + np.log(_total(np.exp(ln_mixture - most[:, None])))
     return total
 
 
@@ -325,46 +446,58 @@ def _rounding(system: System, basis: _Basis, ln_n: FloatArray) -> FloatArray:
 
 def _gibbs_energy(system: System, basis: _Basis, ln_n: FloatArray) -> FloatArray:
     """Return the Gibbs energy over RT, counted from the major substances, (N,)."""
-    minor = np.exp(np.take_along_axis(ln_n, basis.minor, axis=1))
+    minor = np.exp(_at(ln_n, basis.minor))
     amount = np.where(system.in_mixture, np.exp(ln_n), 0.0)
     ln_activity = np.where(system.in_mixture, ln_n, 0.0) - 1.0
     if system.per_total:
         ln_activity = ln_activity + 1.0 - _ln_total(system, ln_n)[:, None]
     mixed = np.where(amount > 0, amount * ln_activity, 0.0)
-    energy: FloatArray = mixed.sum(axis=1) - (minor * basis.ln_k).sum(axis=1)
+    energy: FloatArray = _total(mixed) - _total(minor * basis.ln_k)
     return energy
 
 
 def _newton_step(
-    system: System, basis: _Basis, ln_n: FloatArray, total: FloatArray, affinity: FloatArray
+    system: System,
+    basis: _Basis,
+    ln_n: FloatArray,
+    ln_minor: FloatArray,
+    total: FloatArray,
+    affinity: FloatArray,
+    size: FloatArray,
 ) -> FloatArray:
     """Return the change of the logarithms of the minor amounts, (N, r)."""
-    ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
     if system.all_from_pure:
         # The pure phases alone say which shares the mixture would have to have; if these add up
-        # to more than one it grows, in these proportions, until a phase is used up.
-        ln_share = ln_minor - total[:, None] - affinity
-        ln_sum = np.logaddexp.reduce(ln_share, axis=1)
-        onward: FloatArray = -affinity + (_STRIDE * np.sign(ln_sum) - ln_sum)[:, None]
+        # to more than one it grows, in these proportions, until a phase is used up. Towards the
+        # shares at a constant amount, and to a larger or smaller one: each way goes down.
+        mean = (np.exp(ln_minor - total[:, None]) * affinity).sum(axis=1, keepdims=True)
+        onward: FloatArray = mean - affinity - _STRIDE * np.sign(mean)
         return onward
-    mixture = np.where(system.in_mixture, basis.of_major, 0.0)
-    shares = np.where(mixture != 0, mixture * np.exp(ln_minor[:, :, None] - ln_n[:, None, :]), 0.0)
+    whole = system.in_mixture.all()
+    mixture = basis.of_major if whole else np.where(system.in_mixture, basis.of_major, 0.0)
+    # Of a minor amount over the major ones that it is made of: about one at most.
+    shares = np.exp(ln_minor)[:, :, None] / np.exp(ln_n)[:, None, :]
+    deep = np.flatnonzero(-_most(-ln_n) < _DEEP)
+    if len(deep):
+        of_deep = np.exp(ln_minor[deep, :, None] - ln_n[deep, None, :])
+        shares[deep] = np.where(mixture[deep] != 0, of_deep, 0.0)
+    shares *= mixture
     matrix = mixture @ shares.transpose(0, 2, 1)
     if system.per_total:
-        rise = (basis.nu * system.in_mixture).sum(axis=2)
+        rise = basis.nu @ system.in_mixture.astype(float)
         matrix -= rise[:, :, None] * (rise * np.exp(ln_minor - total[:, None]))[:, None, :]
     identity = np.eye(matrix.shape[1])
-    matrix += identity
-    change = solve_stack(matrix, -affinity[:, :, None])[:, :, 0]
+    matrix.reshape(len(matrix), -1)[:, :: matrix.shape[1] + 1] += 1.0
+    # The Hessian of the Gibbs energy in the extents, its columns times the minor amounts.
+    change = solve_definite(matrix, -affinity)
     # Where pure phases make up nearly the whole mixture there is a direction along which the Gibbs
     # energy is all but a straight line: some way down it.
-    weight = np.exp(ln_minor - ln_minor.max(axis=1, keepdims=True))
-    far = _FLAT * (1.0 + np.abs(affinity).max(axis=1))
-    downhill = (affinity * weight * change).sum(axis=1) < 0
-    flat = ~(downhill & (np.abs(change).max(axis=1) < far))
+    weight = np.exp(ln_minor - _most(ln_minor)[:, None])
+    downhill = _total(affinity * weight * change) < 0
+    flat = ~(downhill & (_most(np.abs(change)) < _FLAT * (1.0 + size)))
     if flat.any():
         damped = matrix[flat] + identity / _FLAT
-        change[flat] = solve_stack(damped, -affinity[flat][:, :, None])[:, :, 0]
+        change[flat] = solve_definite(damped, -affinity[flat])
     return change
 
 
@@ -372,12 +505,12 @@ def _majors(basis: _Basis, ln_n: FloatArray, ln_minor: FloatArray) -> FloatArray
     """Return all ln amounts for the minor ones; not finite where one is not above zero."""
     amount = basis.fixed + (np.exp(ln_minor)[:, None, :] @ basis.of_major)[:, 0]
     found = np.log(amount)
-    deep: BoolArray = np.asarray((ln_minor < _DEEP).any(axis=1))
+    deep: BoolArray = np.asarray(-_most(-ln_minor) < _DEEP)
     if deep.any():
         found[deep] = _ln_majors(basis.samples(deep), ln_minor[deep])
     # What no reaction changes stays as it is to the last digit.
     found = np.where(basis.changing, found, ln_n)
-    np.put_along_axis(found, basis.minor, ln_minor, axis=1)
+    _put(found, basis.minor, ln_minor)
     return found
 
 
@@ -396,34 +529,40 @@ def _ln_majors(basis: _Basis, ln_minor: FloatArray) -> FloatArray:
 
 
 def _advance(
-    system: System, basis: _Basis, ln_n: FloatArray, affinity: FloatArray, change: FloatArray
+    system: System,
+    basis: _Basis,
+    ln_n: FloatArray,
+    ln_minor: FloatArray,
+    affinity: FloatArray,
+    size: FloatArray,
+    change: FloatArray,
 ) -> tuple[FloatArray, IntArray]:
     """Take as much of a step as can be, and tell which pure phase it used up, if one."""
     count = len(ln_n)
-    ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
-    amount = np.exp(ln_minor - ln_minor.max(axis=1, keepdims=True))
-    slope = (affinity * amount * change).sum(axis=1)
-    share = np.ones(count)
-    share = np.minimum(share, 300.0 / np.maximum(np.abs(change).max(axis=1), 300.0))
+    largest = _most(ln_minor)[:, None]
+    amount = np.exp(ln_minor - largest)
+    slope = _total(affinity * amount * change)
+    share = np.minimum(1.0, 300.0 / np.maximum(_most(np.abs(change)), 300.0))
     new = np.array(ln_n)
     todo = np.arange(count)
     # Where a mixture is all there is the slope says enough.
     has_pure = not system.in_mixture.all()
     before = _gibbs_energy(system, basis, ln_n) if has_pure else share
-    close = np.abs(affinity).max(axis=1) < _CLOSE
+    close = size < _CLOSE
     below: BoolArray = np.zeros(ln_n.shape, dtype=bool)  # zero, had a little more been taken
     tried = 0
     while len(todo):
         tried += 1
-        b = basis.samples(todo) if len(todo) < count else basis
-        moved = ln_minor[todo] + share[todo, None] * change[todo]
-        trial = _majors(b, ln_n[todo], moved)
-        drop = np.where(b.changing, trial - ln_n[todo], 0.0)
-        good = (drop >= _KEPT).all(axis=1)  # NaN is not
-        part = system.samples(todo) if len(todo) < count else system
+        whole = len(todo) == count
+        b, part = (basis, system) if whole else (basis.samples(todo), system.samples(todo))
+        here, by = (ln_n, change) if whole else (ln_n[todo], change[todo])
+        moved = (ln_minor if whole else ln_minor[todo]) + share[todo, None] * by
+        trial = _majors(b, here, moved)
+        drop = np.where(b.changing, trial - here, 0.0)
+        good = _most(-drop) <= -_KEPT  # NaN is not
         ahead = _affinities(part, b, trial)
-        grown = np.exp(moved - ln_minor[todo].max(axis=1, keepdims=True))
-        onward = (ahead * grown * change[todo]).sum(axis=1)
+        grown = np.exp(moved - largest[todo])
+        onward = _total(ahead * grown * by)
         good &= ~(onward > 0.5 * np.abs(slope[todo]))
         if has_pure:
             energy = _gibbs_energy(part, b, trial)
@@ -487,7 +626,7 @@ def _to_its_end(
         taken, refused = ways[at, reached], ways[at, reached + 1]
     trial = _majors(basis, ln_n[rows], ln_minor[rows] + taken[:, None] * change[rows])
     fall = trial - new[rows]
-    np.put_along_axis(fall, basis.minor, 0.0, axis=1)
+    _put(fall, basis.minor, 0.0)
     first = np.argmin(fall, axis=1)
     ended = np.isfinite(trial).all(axis=1) & (
         (fall[at, first] < _TO_NOTHING) | (trial[at, first] < _ROUNDING)
@@ -497,6 +636,6 @@ def _to_its_end(
 
 def _overgrown(basis: _Basis, ln_n: FloatArray) -> BoolArray:
     """Tell in which samples a minor substance exceeds one that it is made of."""
-    ln_minor = np.take_along_axis(ln_n, basis.minor, axis=1)
+    ln_minor = _at(ln_n, basis.minor)
     excess = np.where(basis.of_major != 0, ln_minor[:, :, None] - ln_n[:, None, :], -np.inf)
-    return np.asarray((excess > np.log(2.0)).any(axis=(1, 2)))
+    return np.asarray(_most(excess.reshape(len(excess), -1)) > np.log(2.0))

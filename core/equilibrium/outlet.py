@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -16,7 +16,8 @@ from core.rates.equilibrium_constant import (
     LnCorrelation,
     coefficient_sum,
 )
-from core.real_gas.cubic import CubicEquation
+from core.real_gas.equation import KnownGas
+from core.real_gas.remarks import remark_on_constants
 from core.streams.metered import Measurement
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
 from core.thermochemistry.reaction_properties import EXTRAPOLATED, ReactionProperties
@@ -45,6 +46,8 @@ class MeasuredOutlet:
     volume : float or None
         m3/s (batch: m3), of a liquid.
     volume_form : ndarray, shape (n,), or None
+    compressibility : float
+        Of a gas: as stated, or by its model.
     """
 
     flows: FloatArray
@@ -54,6 +57,17 @@ class MeasuredOutlet:
     pressure: Measurement | None = None
     volume: float | None = None
     volume_form: FloatArray | None = None
+    compressibility: float = 1.0
+
+    @property
+    def subject(self) -> Subject:
+        """The outlet of the request."""
+        return self.temperature.subject[:-1]
+
+    @property
+    def gas_flows(self) -> FloatArray:
+        """Flows as an equation of state takes them: none below zero, none unknown."""
+        return np.nan_to_num(np.maximum(self.flows, 0.0))
 
 
 @dataclass(frozen=True)
@@ -72,16 +86,31 @@ class ReactionApproach:
 
 
 def approaches(
-    constants: StatedConstants, outlet: MeasuredOutlet, equation: CubicEquation | None
+    constants: StatedConstants,
+    outlet: MeasuredOutlet,
+    gas: KnownGas | None = None,
+    witness: KnownGas | None = None,
 ) -> tuple[tuple[ReactionApproach | None, ...], tuple[Note, ...]]:
     """Return the approach of each reaction, and notes on those that have none.
 
-    Fugacity coefficients are those of the outlet as it is.
+    Parameters
+    ----------
+    constants : StatedConstants
+    outlet : MeasuredOutlet
+    gas : KnownGas or None
+        None for an ideal one. Fugacity coefficients are those of the outlet as it is.
+    witness : KnownGas or None
+        By which an ideal gas is judged, where its constants are known.
+
+    Raises
+    ------
+    Refused
+        ``not-a-gas`` of an outlet that the equation of state has as a liquid only.
     """
     reactions, in_mixture = constants.reactions, constants.in_mixture
     found: list[ReactionApproach | None] = []
     notes: list[Note] = []
-    ln_activities, gradients = _activities(constants, outlet, equation)
+    ln_activities, gradients = _activities(constants, outlet, gas)
     u_flow = np.sqrt(
         np.maximum(((outlet.forms @ outlet.covariance) * outlet.forms).sum(axis=1), 0.0)
     )
@@ -132,11 +161,34 @@ def approaches(
         else:
             found.append(one)
             notes.extend(constant.notes(one.equilibrium_temperature, subject))
+    notes += _remarks_on_gas(constants, outlet, gas, witness, found)
     return tuple(found), tuple(notes)
 
 
+def _remarks_on_gas(
+    constants: StatedConstants,
+    outlet: MeasuredOutlet,
+    gas: KnownGas | None,
+    witness: KnownGas | None,
+    found: Sequence[ReactionApproach | None],
+) -> Iterator[Note]:
+    """Remark on the gas of the outlet as it is, and on constants that its fugacities change."""
+    told = np.array([one is not None for one in found])
+    known = gas or witness
+    if known is None or outlet.pressure is None or not told.any():
+        return
+    flows, subject = outlet.gas_flows, outlet.subject
+    at = outlet.temperature.value, outlet.pressure.value, flows
+    yield from known.remarks(*at, taken_as_ideal=gas is None, subject=subject)
+    if gas is None:
+        ids = [reaction.id for reaction in constants.reactions.reactions]
+        ln_phi = known.ln_fugacity_coefficients(*at)
+        shift = np.where(told, constants.reactions.nu @ ln_phi, 0.0)
+        yield from remark_on_constants(shift[None], ids, subject)
+
+
 def _activities(
-    constants: StatedConstants, outlet: MeasuredOutlet, equation: CubicEquation | None
+    constants: StatedConstants, outlet: MeasuredOutlet, gas: KnownGas | None
 ) -> tuple[FloatArray, FloatArray]:
     """Logarithms of activities, shape (S,), and their derivatives by the unknowns, (S, n)."""
     inside: BoolArray = constants.in_mixture
@@ -149,13 +201,10 @@ def _activities(
         each = each - np.log(total)
         each = each + np.log(outlet.pressure.value / constants.standard_pressure)
         gradients = gradients - outlet.forms[inside].sum(axis=0) / total
-        if equation is not None:
-            state = equation.state(
-                np.array([outlet.temperature.value]),
-                np.array([outlet.pressure.value]),
-                np.maximum(outlet.flows[inside], 0.0)[None],
-            )
-            each[inside] += state.ln_fugacity_coefficients[0]
+        if gas is not None:
+            at = outlet.temperature.value, outlet.pressure.value, outlet.gas_flows
+            gas.known_compressibility(*at, outlet.subject)
+            each = each + gas.ln_fugacity_coefficients(*at)
     elif outlet.volume is not None:
         each = each - np.log(outlet.volume)
         if outlet.volume_form is not None:

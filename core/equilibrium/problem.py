@@ -28,7 +28,8 @@ class Mixture:
     standard_pressure : float
         Pa, of the activities of a gas.
     equation : CubicEquation or None
-        Of the substances in the mixture, in order; None for an ideal gas.
+        Of the substances in the mixture, in order; None for an ideal gas. What it
+        has as a liquid only is refused; what would partly condense is one gas.
     """
 
     in_mixture: BoolArray
@@ -108,8 +109,6 @@ class Equilibrium:
         K, Pa, m3, -; pressure is NaN for a liquid, and volume where none was stated.
     ln_fugacity_coefficients : ndarray, shape (N, S)
         Zero for an ideal gas and for what is no gas.
-    may_condense : ndarray of bool, shape (N,)
-        A real gas out of which a liquid would form: the answer takes it as one gas.
     balance : ndarray, shape (N,)
         The largest error of what is conserved, relative to its terms.
     iterations : ndarray of int, shape (N,)
@@ -127,7 +126,6 @@ class Equilibrium:
     volume: FloatArray
     compressibility: FloatArray
     ln_fugacity_coefficients: FloatArray
-    may_condense: BoolArray
     balance: FloatArray
     iterations: IntArray
     faults: dict[int, Fault] = field(default_factory=dict)

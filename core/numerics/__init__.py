@@ -1,1 +1,1 @@
-"""Quadrature and root bracketing, shared by the chapters."""
+"""Quadrature, root bracketing and the marching of equations, shared by the chapters."""

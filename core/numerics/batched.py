@@ -42,11 +42,12 @@ CaseValue: TypeAlias = Callable[[FloatArray, Sequence[FloatArray], IntArray], Fl
 MOST_EVALUATIONS = 100_000
 """Of the right-hand side, for one case."""
 
-_WIDTH = 8192  # cases under way at a time: wider is quicker for each, by more memory
+_WIDTH = 8192  # cases under way at a time: wider is quicker for each, and takes more memory
+_STIFF_WIDTH = 2048  # of which each has a matrix
 _SAFETY, _LEAST_FACTOR, _MOST_FACTOR = 0.9, 0.2, 6.0
 _NOT_FINITE_FACTOR = 0.25
 _SIGNS_OF_STIFFNESS, _SIGNS_AGAINST = 10, 6  # steps; DOP853 waits for 15
-_WORTH_IT = 300  # explicit steps to the end, below which they are the quicker way, stiff or not
+_WORTH_IT = 200  # explicit steps to the end, below which they are the quicker way, stiff or not
 _EPS, _TINY = float(np.finfo(float).eps), float(np.finfo(float).tiny)
 _LEAST_STEP = 16 * _EPS  # of where a case stands
 _LEAST_OF_ALL = 1e-60  # of the way: a start at zero may need steps far below rounding of the way
@@ -270,7 +271,8 @@ class _Room:
 
     def _work(self, count: int, drawn: Callable[[IntArray], _Lanes]) -> None:
         """Work through cases, of which some wait for room."""
-        width = count if self.together else _WIDTH
+        width = _WIDTH if self.explicit else _STIFF_WIDTH
+        width = count if self.together else width
         lanes, begun = drawn(np.arange(min(count, width))), min(count, width)
         while True:
             if begun < count and 2 * len(lanes.case) <= width:

@@ -8,7 +8,7 @@ of its own that lies in one piece, so that it can be written as straight-line co
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TypeAlias
 
 import numpy as np
@@ -38,6 +38,7 @@ class Slopes:
 
     function: CaseFunction
     case: IntArray
+    _repeated: dict[int, Slopes] = field(default_factory=dict, init=False, repr=False)
 
     def __call__(self, x: FloatArray, y: FloatArray) -> FloatArray:
         """Return the slopes, shape (n, A)."""
@@ -45,6 +46,13 @@ class Slopes:
         for i, slope in enumerate(self.function(x, tuple(y), self.case)):
             out[i] = slope
         return out
+
+    def repeated(self, times: int) -> Slopes:
+        """Return the same for these cases several times over, one after the other."""
+        found = self._repeated.get(times)
+        if found is None:
+            found = self._repeated[times] = Slopes(self.function, np.tile(self.case, times))
+        return found
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,5 +121,5 @@ class CaseParameters:
             if kept is case:
                 return rows
         rows = tuple(np.take(self._table, case, axis=1))
-        self._kept = [(case, rows), *self._kept[:1]]
+        self._kept = [(case, rows), *self._kept[:2]]
         return rows

@@ -10,6 +10,7 @@ finds where events are, once it is known about where to look.
 
 from __future__ import annotations
 
+import math
 import warnings
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
@@ -20,7 +21,9 @@ from scipy.integrate import ODEintWarning, odeint
 
 from core.arrays import FloatArray, IntArray
 from core.errors import Refused, Subject
+from core.numerics import explicit_step
 from core.numerics.batched import CaseEvent, march_cases, unfinished
+from core.numerics.case_slopes import CaseFunction, Slopes, Tolerance
 
 Function: TypeAlias = Callable[[float, list[float]], Sequence[float]]
 """``f(x, y)``: a float and n floats, to n slopes. Raises what arithmetic on floats raises, or
@@ -32,6 +35,8 @@ MOST_EVALUATIONS = 200_000
 """Of the right-hand side: less than a second for a dozen components."""
 
 _TIGHTER = 0.1
+_CORRECTIONS = 6
+_EPS = float(np.finfo(float).eps)
 _DEARER = 8  # an evaluation, where arrays of one case go around it
 _STEPS = 2**30  # of LSODA between two abscissae: it is evaluations that are counted
 _NO_WAY = 1e-6  # of where it is: gained with half of the evaluations, it does not get on
@@ -218,7 +223,7 @@ class _Case:
             return self.carefully(run.evaluations)
         except _Spent:
             gained = abs(run.furthest - run.halfway)
-            stuck = gained <= _NO_WAY * abs(run.furthest)
+            stuck = gained <= _NO_WAY * abs(run.furthest) and not run.looking
             code = "march-not-finished" if stuck else "compute-budget"
             end = float(self.x[-1])
             raise Refused(
@@ -227,7 +232,7 @@ class _Case:
 
     def carefully(self, evaluations: int) -> March:
         """March by the methods that can refuse a trial."""
-        walk = _walked(self, self.x, self.y0, np.zeros(len(self.events), dtype=np.intp))
+        walk = _walked(self, self.x, self.y0)
         return March(
             self.x[: len(walk.y)],
             walk.y,
@@ -251,9 +256,25 @@ class _Case:
     def value(self, event: int, x: float, y: list[float]) -> float:
         """Return the value of an event, not a number where it has none."""
         try:
-            return float(self.events[event].value(x, y))
+            value = self.events[event].value(x, y)
         except (ValueError, ArithmeticError):
-            return float("nan")
+            return math.nan
+        return math.nan if isinstance(value, complex) else float(value)
+
+
+@dataclass(frozen=True, eq=False)
+class _Span:
+    """A stretch to look at closely, and the sides on which the values are at its begin.
+
+    ``event`` is the one that changes sides there where nothing else does, else -1; ``passes`` its
+    values at both ends, about.
+    """
+
+    begin: float
+    end: float
+    sides: IntArray
+    event: int
+    passes: FloatArray
 
 
 class _Run:
@@ -263,6 +284,7 @@ class _Run:
         self.case = case
         self.onward = 1.0 if case.x[-1] > case.x[0] else -1.0
         self.evaluations = 0
+        self.looking = False  # for events, which is not to be stuck
         self.furthest = self.halfway = float(case.x[0])
         self.chain: list[tuple[float, list[float]]] = []
         self.judged = 0
@@ -277,11 +299,12 @@ class _Run:
         return March(x, y, float(x[-1]), y[-1], (), False, self.evaluations)
 
     def _counted(self) -> Callable[[float, FloatArray], Sequence[float]]:
-        of, most = self.case.slopes_or_none, self.case.most
+        f, most = self.case.f, self.case.most
         begun = self.evaluations
         limit = begun + most // 2
 
         def slopes(x: float, y: FloatArray) -> Sequence[float]:
+            # As _Case.slopes_or_none, written out: calls are what it costs.
             nonlocal limit
             self.evaluations += 1
             if self.evaluations > limit:
@@ -289,8 +312,12 @@ class _Run:
                 if limit == begun + most:
                     raise _Spent
                 limit = begun + most
-            found = of(x, y.tolist())
-            if found is None:
+            try:
+                found = f(x, y.tolist())
+            except (ValueError, ArithmeticError):
+                raise _GivenUp from None
+            total = sum(found)
+            if total - total != 0.0 or total.__class__ is complex:
                 raise _GivenUp
             return found
 
@@ -331,21 +358,29 @@ class _Run:
             self.chain.append((float(x[-1]), y[-1].tolist()))
         except _Passed:
             passed = True
-        spans, sides = self._spans()
+        spans = self._spans()
         if not spans:
             if passed:  # by less than the tolerance
                 raise _GivenUp
             return self._whole(y)
-        last = spans[-1][1] if passed else x[-1]
-        begins = np.array([span[0] for span in spans])
+        last = spans[-1].end if passed else x[-1]
+        begins = np.array([span.begin for span in spans])
         grid = np.concatenate([x[self.onward * (last - x) >= 0], begins])
         grid = self.onward * np.unique(self.onward * grid)
         y = self._lsoda(grid, self._counted()) if len(grid) > 1 else self.case.y0[None]
         crossings: list[Crossing] = []
-        for (begin, end), side in zip(spans, sides, strict=True):
+        walked = 0
+        for span in spans:
+            begin = span.begin
             row = int(np.flatnonzero(grid == begin)[0])
-            walk = _walked(self.case, np.array([begin, end]), y[row], side)
+            walk = _met(self.case, span, y[row])
+            if walk is None:
+                walk = _walked(self.case, np.array([begin, span.end]), y[row], span.sides)
             self.evaluations += walk.evaluations
+            walked += walk.evaluations
+            if _DEARER * walked > self.case.most:
+                self.looking, self.furthest = True, walk.end
+                raise _Spent
             crossings.extend(walk.crossings)
             if walk.terminated:
                 before = x[self.onward * (walk.end - x) >= 0]
@@ -353,12 +388,8 @@ class _Run:
                 states = y[np.minimum(rows, len(grid) - 1)]
                 late = self.onward * (before - begin) > 0
                 for i in np.flatnonzero(late):
-                    states[i] = _walked(
-                        replace(self.case, events=()),
-                        np.array([begin, before[i]]),
-                        y[row],
-                        side[:0],
-                    ).y_end
+                    stretch = np.array([begin, before[i]])
+                    states[i] = _walked(replace(self.case, events=()), stretch, y[row]).y_end
                 return March(
                     before, states, walk.end, walk.y_end, tuple(crossings), True, self.evaluations
                 )
@@ -396,14 +427,15 @@ class _Run:
 
         return slopes
 
-    def _spans(self) -> tuple[list[tuple[float, float]], list[IntArray]]:
-        """Return where to look closely, and the sides on which the values are there."""
+    def _spans(self) -> list[_Span]:
+        """Return where to look closely."""
         case = self.case
         at = np.array([x for x, _ in self.chain])
         values = np.array(
             [[case.value(e, x, y) for x, y in self.chain] for e in range(len(case.events))]
         )
-        look = np.zeros(len(at) - 1, dtype=bool)
+        look = np.zeros((len(case.events), len(at) - 1), dtype=bool)
+        closely = np.zeros(len(at) - 1, dtype=bool)
         side = np.zeros((len(case.events), len(at)), dtype=np.intp)
         for e, event in enumerate(case.events):
             signs = np.nan_to_num(np.sign(values[e])).astype(np.intp)
@@ -414,19 +446,22 @@ class _Run:
             changed = (before != 0) & (after != before) & ~np.isnan(values[e, 1:])
             if event.direction:
                 changed &= before == -event.direction
-            look |= changed
+            look[e] = changed
             dips = _dips(at, values[e] * side[e], event.direction * side[e])
-            look[:-1] |= dips
-            look[1:] |= dips
-        spans: list[tuple[float, float]] = []
-        sides: list[IntArray] = []
-        for k in np.flatnonzero(look).tolist():
-            if spans and spans[-1][1] == at[k]:
-                spans[-1] = (spans[-1][0], float(at[k + 1]))
-            else:
-                spans.append((float(at[k]), float(at[k + 1])))
-                sides.append(side[:, k])
-        return spans, sides
+            closely[:-1] |= dips
+            closely[1:] |= dips
+        spans: list[_Span] = []
+        for k in np.flatnonzero(look.any(axis=0) | closely).tolist():
+            begin, end = float(at[k]), float(at[k + 1])
+            if spans and spans[-1].end == begin:
+                spans[-1] = replace(spans[-1], end=end, event=-1)
+                continue
+            which = np.flatnonzero(look[:, k])
+            alone = len(which) == 1 and not closely[k]
+            only = int(which[0]) if alone else -1
+            passes = values[only, k : k + 2] if alone else np.zeros(2)
+            spans.append(_Span(begin, end, side[:, k], only, passes))
+        return spans
 
 
 def _dips(x: FloatArray, size: FloatArray, towards: IntArray) -> np.ndarray:
@@ -457,12 +492,46 @@ class _Walk:
     evaluations: int
 
 
-def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Walk:
-    n = len(y0)
+def _met(case: _Case, span: _Span, y0: FloatArray) -> _Walk | None:
+    """Return where the only event of a step of LSODA is; None where that needs a closer look.
 
-    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> Sequence[float]:
-        found = case.slopes_or_none(float(at[0]), [float(row[0]) for row in y])
-        return [np.nan] * n if found is None else found
+    Newton's method on the length of one step of order eight, which is longer by nature than one
+    of LSODA's.
+    """
+    event = span.event
+    before, after = span.passes
+    if event < 0 or not before * after < 0:
+        return None
+    f = Slopes(_on_arrays(case, len(y0)), np.zeros(1, dtype=np.intp))
+    x, y = np.array([span.begin]), y0[:, None]
+    tolerance = Tolerance(case.rtol, case.atol[:, None])
+    rise = (after - before) / (span.end - span.begin)
+    h, evaluations = -before / rise, 1
+    with np.errstate(all="ignore"):
+        start = f(x, y)
+        for _ in range(_CORRECTIONS):
+            step = explicit_step.attempt(f, x, y, start, np.array([h]), tolerance)
+            evaluations += explicit_step.EVALUATIONS
+            if not step.error[0] <= 1.0:
+                return None
+            at, state = span.begin + h, step.y[:, 0]
+            value = case.value(event, at, state.tolist())
+            ahead = 1e-6 * (span.end - span.begin)
+            further = (state + ahead * step.slopes[:, 0]).tolist()
+            slope = (case.value(event, at + ahead, further) - value) / ahead
+            move = value / slope
+            if not 0.0 <= (h - move) / (span.end - span.begin) <= 1.0 or slope * rise <= 0:
+                return None
+            if abs(move) <= 4.0 * _EPS * abs(at) or abs(move) <= 1e-13 * abs(h):
+                crossing = Crossing(event, at, state)
+                ends = case.events[event].terminal
+                return _Walk(y0[None], at, state, (crossing,), ends, evaluations)
+            h -= move
+    return None
+
+
+def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None = None) -> _Walk:
+    """March a stretch; the sides of the values at its start may be ``known``."""
 
     def of(event: int) -> CaseEvent:
         def value(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> FloatArray:
@@ -470,8 +539,9 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Wal
 
         return CaseEvent(value, case.events[event].direction)
 
+    slopes = _on_arrays(case, len(y0))
     events = [of(e) for e in range(len(case.events))]
-    sides = np.array(sides, dtype=np.intp)
+    sides = np.zeros(len(events), dtype=np.intp) if known is None else known.copy()
     crossings: list[Crossing] = []
     rows: list[FloatArray] = [y0]
     evaluations = 0
@@ -506,6 +576,22 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, sides: IntArray) -> _Wal
         sides[event] = found.rising[0]
         if not len(ahead):
             return _Walk(np.array(rows), at, state, tuple(crossings), False, evaluations)
+
+
+def _on_arrays(case: _Case, n: int) -> CaseFunction:
+    """Return the right-hand side as the methods for many cases ask for it."""
+
+    def slopes(at: FloatArray, y: Sequence[FloatArray], _case: IntArray) -> list[FloatArray]:
+        # More than one where derivatives are taken by differences.
+        out = np.empty((n, len(at)))
+        for lane, (here, *state) in enumerate(
+            zip(at.tolist(), *(row.tolist() for row in y), strict=True)
+        ):
+            found = case.slopes_or_none(here, state)
+            out[:, lane] = np.nan if found is None else found
+        return list(out)
+
+    return slopes
 
 
 def _sides_beyond(case: _Case, crossing: Crossing, sides: IntArray) -> IntArray:

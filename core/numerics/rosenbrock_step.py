@@ -209,10 +209,13 @@ def _jacobian_in(
     if jacobian is None:
         # The least increment, of a component that is zero, as in LSODA.
         least = 1000.0 * n * _EPS * np.abs(h) * np.sqrt(mean_square(start / unit))
-        for j in range(n):
-            moved = y.copy()
-            moved[j] += np.maximum(_ROOT_OF_EPS * np.abs(y[j]), least * unit[j] + _TINY)
-            entries[:, j] = (f(x, moved) - start) / (moved[j] - y[j])
+        # All of them in one call, as if they were cases of their own.
+        moved = np.repeat(y[:, None], n, axis=1)
+        of = np.arange(n)
+        moved[of, of] += np.maximum(_ROOT_OF_EPS * np.abs(y), least * unit + _TINY)
+        width = moved[of, of] - y
+        ahead = f.repeated(n)(np.tile(x, n), moved.reshape(n, n * cases))
+        entries[:] = (ahead.reshape(n, n, cases) - start[:, None]) / width
     else:
         for i, row in enumerate(jacobian(x, tuple(y), f.case)):
             for j, entry in enumerate(row):

@@ -142,6 +142,21 @@ class AccountProblem:
         around = () if self.recycle is None else self.recycle.streams
         return (*self.feed, *self.outlet, *around)
 
+    def of_streams(self, streams: Sequence[MeteredStream]) -> AccountProblem:
+        """Return the problem with these :attr:`streams`, one for each, in order."""
+        feeds, outlets = len(self.feed), len(self.outlet)
+        recycle, around = self.recycle, tuple(streams[feeds + outlets :])
+        if recycle is not None:
+            first = 2 if recycle.purge is None else 3
+            purge = None if recycle.purge is None else around[2]
+            recycle = Recycle(around[0], around[1], purge, around[first:])
+        return replace(
+            self,
+            feed=tuple(streams[:feeds]),
+            outlet=tuple(streams[feeds : feeds + outlets]),
+            recycle=recycle,
+        )
+
 
 @dataclass(frozen=True)
 class Unknown:
@@ -435,20 +450,7 @@ def readings_of(streams: Iterable[MeteredStream]) -> list[Subject]:
 
 def ordered(problem: AccountProblem) -> AccountProblem:
     """Return the problem with the readings of each stream :func:`in_order`."""
-    recycle = problem.recycle
-    if recycle is not None:
-        recycle = Recycle(
-            in_order(recycle.inlet),
-            in_order(recycle.returned),
-            None if recycle.purge is None else in_order(recycle.purge),
-            tuple(in_order(stream) for stream in recycle.products),
-        )
-    return replace(
-        problem,
-        feed=tuple(in_order(stream) for stream in problem.feed),
-        outlet=tuple(in_order(stream) for stream in problem.outlet),
-        recycle=recycle,
-    )
+    return problem.of_streams([in_order(stream) for stream in problem.streams])
 
 
 def in_order(stream: MeteredStream) -> MeteredStream:

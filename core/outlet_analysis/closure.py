@@ -118,7 +118,7 @@ def _drawn(
     account = _released(found.account, around, np.flatnonzero(found.absent))
     forms = np.concatenate([atoms @ account.feed_map, atoms @ account.outlet_map])
     flows = np.full((draws.sampling.draws, len(forms)), np.nan)
-    for rows, series in drawn_blocks(found.account, draws.sampling, account):
+    for rows, series in drawn_blocks(found.account, draws.sampling, account, draws.factors):
         block = flows[rows]
         for outcome in fit_block(prepare(series, slice(0, len(block))), None):
             if isinstance(outcome, Fitted):

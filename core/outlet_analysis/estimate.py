@@ -208,10 +208,6 @@ class Estimate:
         """
         return np.asarray(self.z @ self.account.extent_map.T)
 
-    def covariance_of(self, forms: FloatArray) -> FloatArray:
-        """Covariance of linear forms (k, n) of ``z``, shape (..., k, k)."""
-        return np.asarray(forms @ self.covariance @ forms.T)
-
     def u_of(self, forms: FloatArray) -> FloatArray:
         """Standard uncertainties of linear forms (k, n) of ``z``, or (..., k, n); (..., k)."""
         variance = ((forms @ self.covariance) * forms).sum(axis=-1)

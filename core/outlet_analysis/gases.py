@@ -6,7 +6,12 @@ differential-pressure meters. The account is estimated with a Z for each of
 them, at first that of the gas as its own readings have it; Z is found of the
 gas that the account then has, and so on until it stays (successive
 substitution, by the secant of each Z from the second step on; Z moves little
-with composition). Uncertainties take the Z found as exact.
+with composition).
+
+The covariance of the account counts that Z moves with it: with what a change of
+Z does to the account, G = dz/dZ, and an account to Z, H = dZ/dz, errors of the
+readings reach it as (1 - G H)^-1 times what they do at a Z that stays. Tests of
+readings, and the conditions at a meter, take Z as exact.
 """
 
 from __future__ import annotations
@@ -17,11 +22,13 @@ from typing import Any
 
 import numpy as np
 
-from core.arrays import BoolArray, FloatArray
+from core.arrays import BoolArray, FloatArray, IntArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fact, Fault, Note, Refused, Subject, refuse
+from core.numerics.linear import solve_stack
 from core.outlet_analysis.account import Account, AccountProblem, build_account
 from core.outlet_analysis.estimate import Estimate, ReadingTable
+from core.outlet_analysis.preparation import BLOCK
 from core.outlet_analysis.readings import (
     FRACTIONS,
     PRESSURE,
@@ -30,6 +37,7 @@ from core.outlet_analysis.readings import (
     Series,
 )
 from core.outlet_analysis.reconciliation import estimate
+from core.outlet_analysis.solving import fitted
 from core.real_gas.equation import KnownGas
 from core.real_gas.remarks import NEARLY_IDEAL
 from core.real_gas.witness import witness_of
@@ -41,6 +49,9 @@ SETTLED = 1e-12
 NOISE = 1e-10
 """And at which it is taken when no further step brings it nearer: rounding of the fit."""
 STEPS = 20
+_STEP_OF_Z = 0.02
+"""Of ln Z: far more than rounding of a fit, and small beside what curves in it."""
+_STEP_OF_UNKNOWN = 1e-6
 STEEPEST = 0.7
 """Change of Z by the account over that put in, beyond which the secant is not trusted."""
 
@@ -111,7 +122,7 @@ def estimate_of_gas(problem: AccountProblem, gas: KnownGas | None) -> Estimate:
         stepped = np.where(open_[..., None], _step(z, following, last), z)
         last, z = (z, following), stepped
         found = estimate(_with_compressibility(problem, gases, z))
-    return _judged(found, gas, gases, z, moved)
+    return with_moving_gases(_judged(found, gas, gases, z, moved), gas)
 
 
 def _step(
@@ -224,8 +235,7 @@ def _remarks(
         "compressibility-found",
         "the readings here were taken with Z = {z}"
         + (" to {z_most}" if high != low else "")
-        + ", that of the gas in the account by the equation of state; uncertainties take it as"
-        " exact",
+        + ", that of the gas in the account by the equation of state, which is taken as exact",
         "info",
         of.subject,
         facts,
@@ -353,25 +363,179 @@ def _at_meter(writer: ReadingWriter, g: int, reading: FlowReading) -> FloatArray
     return rows
 
 
-def _amounts(found: Estimate, of: _Gas) -> FloatArray:
-    """Return the substances of a gas in the account, shape (..., S), mol/s."""
+@dataclass(frozen=True, eq=False)
+class GasesOfAccount:
+    """The gases of an estimate whose Z readings count by, for the account at other unknowns.
+
+    Attributes
+    ----------
+    account : Account
+        With the Z found.
+    gas : KnownGas
+    gases : tuple, length k
+    z : ndarray, shape (k,) or (N, k)
+        Z that was put in.
+    exponents : ndarray, shape (k, m)
+        Powers of each Z that each reading counts with.
+    """
+
+    account: Account
+    gas: KnownGas
+    gases: tuple[_Gas, ...]
+    z: FloatArray
+    exponents: FloatArray
+
+    def compressibility(self, unknowns: FloatArray, samples: IntArray | None = None) -> FloatArray:
+        """Return Z over that put in, of the account at unknowns (M, n), shape (M, k).
+
+        Not a number where there is no gas. ``samples`` (M,) says which of a series they are of.
+        """
+        each = []
+        for of in self.gases:
+            g, weights = _weights(self.account, of)
+            flows = self.account.stream_flows(g, unknowns) @ weights.T
+            t, p = _conditions_at(self.account, unknowns, of)
+            if of.at_meter is not None and samples is not None:
+                t, p = (x[samples] if isinstance(x, np.ndarray) else x for x in (t, p))
+            with np.errstate(invalid="ignore"):
+                each.append(self.gas.compressibility(t, p, flows))
+        z = self.z if samples is None or self.z.ndim == 1 else self.z[samples]
+        return np.asarray(np.stack(each, axis=-1) / z)
+
+    def factors(self, ratio: FloatArray) -> FloatArray:
+        """Return what Z times ``ratio`` (N, k) makes of the constants of the forms, (N, m)."""
+        return np.asarray(np.exp(np.log(ratio) @ self.exponents))
+
+
+def gases_of(found: Estimate, gas: KnownGas | None) -> GasesOfAccount | None:
+    """Return the gases of an estimate by :func:`estimate_of_gas`; None where no Z was open."""
+    if gas is None:
+        return None
+    account = found.account
+    gases = tuple(_gases(account))
+    if not gases:
+        return None
+    z = np.stack([_compressibility(found, gas, of) for of in gases], axis=-1)
+    # Z goes into constants alone: what twice as much makes of them tells with which power.
+    exponents = []
+    constants = np.log(np.atleast_2d(account.readings.forms.constants)[0])
+    for k in range(len(gases)):
+        twice = np.ones(z.shape)
+        twice[..., k] = 2.0
+        other = build_account(_with_more(account.problem, gases, twice))
+        changed = np.log(np.atleast_2d(other.readings.forms.constants)[0])
+        exponents.append((changed - constants) / np.log(2.0))
+    return GasesOfAccount(account, gas, gases, z, np.array(exponents))
+
+
+def _with_more(problem: AccountProblem, gases: Sequence[_Gas], times: FloatArray) -> AccountProblem:
+    """Return a problem that has the Z put in with as many times as much, shape (..., k)."""
+    put_in = np.array(times)
+    for k, of in enumerate(gases):
+        g = of.place[0]
+        assert isinstance(g, int)
+        stream = problem.streams[g]
+        if of.at_meter is not None:
+            continue  # in its volume and its density already
+        own: float | FloatArray | None = stream.compressibility
+        if len(of.place) > 1:
+            analysis = of.place[1]
+            assert isinstance(analysis, int)
+            own = stream.analyses[analysis].compressibility
+        put_in[..., k] *= 1.0 if own is None else own
+    return _with_compressibility(problem, gases, put_in)
+
+
+def with_moving_gases(found: Estimate, gas: KnownGas) -> Estimate:
+    """Return an estimate by :func:`estimate_of_gas` whose covariance counts that Z moves."""
+    gases = gases_of(found, gas)
+    single = found.account.readings.samples is None
+    z = np.atleast_2d(found.z)
+    rows = np.flatnonzero(np.isfinite(z).all(axis=1))
+    if gases is None or not len(rows):
+        return found
+    covariance = np.array(found.covariance if not single else found.covariance[None])
+    for part in np.array_split(rows, -(-len(rows) // BLOCK)):
+        moved = _moved_by_gases(gases, z[part], part) @ _moving_gases(gases, z[part], part)
+        identity = np.broadcast_to(np.eye(z.shape[1]), moved.shape)
+        spread = solve_stack(identity - moved, identity)
+        # Where an account a little aside is none, Z is taken to stay.
+        good = np.isfinite(spread).all(axis=(1, 2))
+        spread, at = spread[good], part[good]
+        covariance[at] = spread @ covariance[at] @ spread.transpose(0, 2, 1)
+    return replace(found, covariance=covariance[0] if single else covariance)
+
+
+def _moved_by_gases(gases: GasesOfAccount, z: FloatArray, rows: IntArray) -> FloatArray:
+    """Return d(unknowns)/d ln Z of the best account of some samples, shape (N, n, k)."""
+    account, count = gases.account, len(gases.gases)
+    readings = account.readings
+    at = np.repeat(rows, count)
+    forms = readings.forms
+    constants = np.atleast_2d(forms.constants)
+    ratio = np.tile(np.exp(_STEP_OF_Z * np.eye(count)), (len(rows), 1))
+    series = replace(
+        readings,
+        forms=replace(
+            forms, constants=constants[at if len(constants) > 1 else 0 * at] * gases.factors(ratio)
+        ),
+        measured=readings.measured[at],
+        u=readings.u[at],
+        bound=readings.bound[at],
+        per_mole=readings.per_mole if readings.per_mole.ndim == 1 else readings.per_mole[at],
+        correlated=None if readings.correlated is None else readings.correlated.samples(at),
+        samples=len(at),
+    )
+    start = np.repeat(z, count, axis=0)
+    moved = fitted(replace(account, readings=series), slice(0, len(at)), start) - start
+    by_gas: FloatArray = moved.reshape(len(rows), count, -1).transpose(0, 2, 1)
+    return by_gas / _STEP_OF_Z
+
+
+def _moving_gases(gases: GasesOfAccount, z: FloatArray, rows: IntArray) -> FloatArray:
+    """Return d ln Z/d(unknowns) of some samples at unknowns (N, n), shape (N, k, n)."""
+    account = gases.account
+    flows = account.of_flow | account.of_extent
+    size = np.where(flows, account.largest_flow(z)[:, None], np.abs(z))
+    size = np.where(size > 0, size, 1.0)
+    step = _STEP_OF_UNKNOWN * size
+    n = z.shape[1]
+    aside = (z[:, None, :] + step[:, :, None] * np.eye(n)).reshape(-1, n)
+    there = np.log(gases.compressibility(aside, np.repeat(rows, n))).reshape(len(z), n, -1)
+    found = there - np.log(gases.compressibility(z, rows))[:, None]
+    return np.nan_to_num(found / step[:, :, None]).transpose(0, 2, 1)
+
+
+def _weights(account: Account, of: _Gas) -> tuple[int, FloatArray]:
+    """Return the stream that a gas is of, and its weights on the flows of that, (S, S)."""
     g = of.place[0]
     assert isinstance(g, int)
-    count = found.account.writer.count
-    weights = of.amounts[:, g * count : (g + 1) * count]
+    count = account.writer.count
+    return g, of.amounts[:, g * count : (g + 1) * count]
+
+
+def _amounts(found: Estimate, of: _Gas) -> FloatArray:
+    """Return the substances of a gas in the account, shape (..., S), mol/s."""
+    g, weights = _weights(found.account, of)
     flows = found.stream_flows(g)
     untold = np.isnan(flows).astype(float) @ (weights != 0).T.astype(float) > 0
     return np.where(untold, np.nan, np.nan_to_num(flows) @ weights.T)
 
 
 def _conditions(found: Estimate, of: _Gas) -> tuple[float | FloatArray, float | FloatArray]:
+    return _conditions_at(found.account, found.z, of)
+
+
+def _conditions_at(
+    account: Account, unknowns: FloatArray, of: _Gas
+) -> tuple[float | FloatArray, float | FloatArray]:
+    """Return temperature and pressure of a gas at unknowns (..., n)."""
     if of.at_meter is not None:
         return of.at_meter
     g = of.place[0]
     assert isinstance(g, int)
-    account = found.account
     t, p = (
-        np.asarray(found.z @ account.stream_map[account.writer.place(g, quantity)])
+        np.asarray(unknowns @ account.stream_map[account.writer.place(g, quantity)])
         for quantity in (TEMPERATURE, PRESSURE)
     )
     return t, p
@@ -390,18 +554,13 @@ def _with_compressibility(
     known: dict[tuple[int | Subject, ...], float | FloatArray] = {
         of.place: float(z[k]) if z.ndim == 1 else z[:, k] for k, of in enumerate(gases)
     }
-    streams = [
-        _stream_with(stream, g, known) for g, stream in enumerate((*problem.feed, *problem.outlet))
-    ]
-    feeds = len(problem.feed)
+    streams = [_stream_with(stream, g, known) for g, stream in enumerate(problem.streams)]
     series = dict(problem.series)
     for place, own in known.items():
         subject = place[-1]
         if isinstance(subject, tuple) and subject in series:
             series[subject] = _series_with(series[subject], own)
-    return replace(
-        problem, feed=tuple(streams[:feeds]), outlet=tuple(streams[feeds:]), series=series
-    )
+    return replace(problem.of_streams(streams), series=series)
 
 
 def _stream_with(
@@ -472,7 +631,7 @@ def single_substances_metered(
             Note(
                 "compressibility-found",
                 "the readings here were taken with Z = {z}, that of the gas in the account by the"
-                " equation of state; uncertainties take it as exact",
+                " equation of state, which is taken as exact",
                 "info",
                 subject,
                 {"z": f"{z:.4f}"},

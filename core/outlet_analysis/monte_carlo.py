@@ -11,6 +11,10 @@ symmetric one (7.7).
 A drawn reading may be below zero, as an analyser's zero drifts: it is fitted
 like any other, and nothing is cut off. A draw that no account comes near
 (with every total positive) is left out and counted.
+
+Z that a gas model finds is part of the model of measurement: each draw is fitted
+with that of its own account, found as that of the estimate is. Only the conditions at
+a meter, whose uncertainties are in that of its flow, count in Z as stated.
 """
 
 from __future__ import annotations
@@ -26,11 +30,13 @@ from core.errors import Note, refuse
 from core.outlet_analysis.account import Account
 from core.outlet_analysis.budget import most_draws
 from core.outlet_analysis.estimate import Estimate
+from core.outlet_analysis.gases import GasesOfAccount, gases_of
 from core.outlet_analysis.mixture import draw_factor
-from core.outlet_analysis.preparation import BLOCK, prepare
+from core.outlet_analysis.preparation import BLOCK
 from core.outlet_analysis.ratios import Uncertain
 from core.outlet_analysis.readings import ABOVE, BELOW
-from core.outlet_analysis.solving import Fitted, fit_block, still_open
+from core.outlet_analysis.solving import fitted
+from core.real_gas.equation import KnownGas
 from core.streams.metered import Measurement
 
 DEFAULT_DRAWS = 10_000
@@ -43,6 +49,10 @@ MOST_LEFT_OUT = 0.01
 NEAR_ZERO = 0.05
 """Denominator of a draw, over that of the estimate, below which a ratio has no moments to speak
 of."""
+SETTLED = 1e-5
+"""Relative change of every Z at which a draw is taken: far less than any reading is worth."""
+FITS_WITH_GASES, MOST_FITS_WITH_GASES = 3, 12
+"""How often a draw is fitted with a gas model, as a rule and at most."""
 MEAN_DIFFERS = 0.1
 """Distance of the mean of the draws from the estimate, over u, from which on it is told."""
 
@@ -67,6 +77,8 @@ class Draws:
         Draws that have an account.
     z : ndarray, shape (K, n)
     notes : tuple of Note
+    factors : ndarray, shape (draws, m), or None
+        What Z of each draw makes of the constants of the readings; None without a gas model.
     """
 
     sampling: Sampling
@@ -74,6 +86,7 @@ class Draws:
     kept: BoolArray
     z: FloatArray
     notes: tuple[Note, ...] = ()
+    factors: FloatArray | None = None
 
     @property
     def left_out(self) -> int:
@@ -135,13 +148,17 @@ class Draws:
 
 
 def drawn_blocks(
-    account: Account, sampling: Sampling, part: Account | None = None
+    account: Account,
+    sampling: Sampling,
+    part: Account | None = None,
+    factors: FloatArray | None = None,
 ) -> Iterator[tuple[slice, Account]]:
     """Yield the draws block by block: which they are, and the account with them as a series.
 
     The stream of random numbers (PCG64) runs draw by draw, a number for each
     reading, so that it does not depend on the size of the blocks. With ``part``,
-    an account of some of the readings, it is that with the same draws of them.
+    an account of some of the readings, it is that with the same draws of them; with
+    ``factors``, those of :class:`Draws`, the readings count by the Z of each draw.
     """
     of = account if part is None else part
     columns = _columns(account, of)
@@ -176,7 +193,16 @@ def drawn_blocks(
             ),
             samples=count,
         )
-        yield slice(first, first + count), replace(of, readings=series)
+        rows = slice(first, first + count)
+        drawn = replace(of, readings=series)
+        yield rows, drawn if factors is None else counted_by(drawn, factors[rows][:, columns])
+
+
+def counted_by(series: Account, factors: FloatArray) -> Account:
+    """Return a series of draws whose readings (N, m) count by other Z."""
+    forms = series.readings.forms
+    forms = replace(forms, constants=forms.constants * factors)
+    return replace(series, readings=replace(series.readings, forms=forms))
 
 
 def _columns(account: Account, part: Account) -> IntArray:
@@ -185,8 +211,15 @@ def _columns(account: Account, part: Account) -> IntArray:
     return np.array([places[subject] for subject in part.readings.subjects], dtype=np.intp)
 
 
-def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
+def monte_carlo(found: Estimate, sampling: Sampling, gas: KnownGas | None = None) -> Draws:
     """Fit the account of a single sample anew to every draw of its readings.
+
+    Parameters
+    ----------
+    found : Estimate
+    sampling : Sampling
+    gas : KnownGas or None
+        By which Z of the estimate was found, and is of each draw.
 
     Raises
     ------
@@ -195,32 +228,28 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
         ``draws-without-account``: too many draws have none.
     """
     account, coverage = found.account, found.account.problem.coverage
-    _check(account, sampling, coverage)
+    gases = gases_of(found, gas)
+    _check(account, sampling, coverage, 1 if gases is None else FITS_WITH_GASES)
     z = np.full((sampling.draws, len(account.unknowns)), np.nan)
     # With a split among the unknowns a first guess of its own might lead a draw elsewhere.
     start = found.z if account.split >= 0 else None
+    factors = None if gases is None else np.ones((sampling.draws, len(account.readings.subjects)))
     for rows, series in drawn_blocks(account, sampling):
         block = z[rows]
-        ready = prepare(series, slice(0, len(block)), start)
-        for outcome in fit_block(ready, account.reported):
-            if not isinstance(outcome, Fitted):
-                continue
-            block[outcome.rows] = outcome.z
-            block[np.ix_(outcome.rows, outcome.absent)] = 0.0
-            if account.split >= 0:
-                lost = still_open(account, outcome, ready.active[outcome.rows])
-                block[outcome.rows[lost]] = np.nan
+        block[:] = fitted(series, np.arange(len(block)), start)
+        if gases is not None and factors is not None:
+            factors[rows] = _with_own_gases(series, block, gases)
     kept: BoolArray = np.asarray(np.isfinite(z).all(axis=1))
-    draws = Draws(sampling, coverage, kept, z[kept])
+    draws = Draws(sampling, coverage, kept, z[kept], factors=factors)
     share = draws.left_out / sampling.draws
     if share > MOST_LEFT_OUT:
         raise refuse(
             "draws-without-account",
             ("uncertainty",),
             "of {draws} draws {left_out} have no account that comes near them with every total"
-            f" positive; at most {100 * MOST_LEFT_OUT:g} % may be left out. Some reading's"
-            " uncertainty is about as large as the reading: state a smaller one, or ask for linear"
-            " propagation",
+            f" positive{_as_gas(gases)}; at most {100 * MOST_LEFT_OUT:g} % may be left out. Some"
+            " reading's uncertainty is about as large as the reading: state a smaller one, or ask"
+            " for linear propagation",
             draws=sampling.draws,
             left_out=draws.left_out,
         )
@@ -229,7 +258,7 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
     note = Note(
         "draws-left-out",
         "of {draws} draws {left_out} have no account that comes near them with every total"
-        " positive, and are left out of what is given",
+        f" positive{_as_gas(gases)}, and are left out of what is given",
         "warning",
         ("uncertainty",),
         {"draws": sampling.draws, "left_out": draws.left_out},
@@ -237,7 +266,40 @@ def monte_carlo(found: Estimate, sampling: Sampling) -> Draws:
     return replace(draws, notes=(note,))
 
 
-def _check(account: Account, sampling: Sampling, coverage: float) -> None:
+def _as_gas(gases: GasesOfAccount | None) -> str:
+    return "" if gases is None else " and its gases no liquids"
+
+
+def _with_own_gases(series: Account, z: FloatArray, gases: GasesOfAccount) -> FloatArray:
+    """Fit draws, unknowns ``z`` (N, n) so far, with the Z of their own accounts.
+
+    Z of each by successive substitution, the unknowns changed in place. What has no
+    gas, or does not settle, is left without an account.
+
+    Returns
+    -------
+    ndarray, shape (N, m)
+        What their Z makes of the constants of the readings.
+    """
+    ratio = np.ones((len(z), len(gases.gases)))
+    on = np.flatnonzero(np.isfinite(z).all(axis=1))
+    for _ in range(MOST_FITS_WITH_GASES):
+        following = gases.compressibility(z[on])
+        z[on[~np.isfinite(following).all(axis=1)]] = np.nan
+        off = ~(np.abs(following / ratio[on] - 1) <= SETTLED).all(axis=1)
+        on, following = on[off], following[off]
+        there = np.isfinite(following).all(axis=1)
+        on, following = on[there], following[there]
+        if not len(on):
+            break
+        ratio[on] = following
+        z[on] = fitted(counted_by(series, gases.factors(ratio)), on, z[on])
+        on = on[np.isfinite(z[on]).all(axis=1)]
+    z[on] = np.nan
+    return gases.factors(ratio)
+
+
+def _check(account: Account, sampling: Sampling, coverage: float, fits: int) -> None:
     needed = int(np.ceil(round(2 * IN_EACH_TAIL / (1 - coverage), 6)))
     if sampling.draws < needed:
         raise refuse(
@@ -258,6 +320,7 @@ def _check(account: Account, sampling: Sampling, coverage: float) -> None:
         substances,
         1 if account.problem.recycle is None else 2,
     )
+    most //= fits
     if sampling.draws > most:
         raise refuse(
             "compute-budget",

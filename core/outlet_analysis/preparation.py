@@ -69,8 +69,8 @@ class Block:
     others : ndarray, shape (N, k, n)
         Where to start from where the first guess leads nowhere; k is 0 without a split.
     correlated : Correlated or None
-    start : ndarray, shape (n,), or None
-        Where to start every sample, in place of a first guess.
+    start : ndarray, shape (N, n), or None
+        Where to start each sample, in place of a first guess.
     """
 
     account: Account
@@ -130,7 +130,7 @@ class Group:
 def prepare(account: Account, rows: slice | IntArray, start: FloatArray | None = None) -> Block:
     """Return the samples ``rows`` of the account's readings, ready to be fitted.
 
-    They are started at ``start``, shape (n,), where given.
+    They are started at ``start``, shape (n,) or (N, n), where given.
     """
     readings = account.readings
     value, u, bound = readings.measured[rows], readings.u[rows], readings.bound[rows]
@@ -175,7 +175,8 @@ def prepare(account: Account, rows: slice | IntArray, start: FloatArray | None =
     nominal = _nominal(block, per_mole)
     block = replace(block, nominal=nominal, near=nominal, others=nominal[:, None][:, :0])
     if start is not None:
-        return replace(block, near=np.tile(start, (len(measured), 1)), start=start)
+        start = np.array(np.broadcast_to(start, (len(measured), start.shape[-1])))
+        return replace(block, near=start, start=start)
     return block if account.split < 0 else _split_guessed(block, per_mole)
 
 
@@ -354,7 +355,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
             block.near[rows],
             block.others[rows],
             None if block.correlated is None else block.correlated.samples(rows),
-            block.start,
+            None if block.start is None else block.start[rows],
         )
     slopes, right, u = linearised(block)
     exact = np.flatnonzero(kind == 1)
@@ -405,7 +406,7 @@ def _group(block: Block, rows: IntArray, kind: IntArray) -> Group | tuple[IntArr
         start_mixture,
     )
     if block.start is not None:
-        start = np.tile(block.start, (len(start), 1))
+        start = block.start
     else:
         if block.account.split >= 0:
             start = _not_far(block, start)

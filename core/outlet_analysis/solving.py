@@ -34,6 +34,7 @@ from core.outlet_analysis.preparation import (
     groups,
     meeting_equations,
     natural_size,
+    prepare,
 )
 
 LEAST_TOLD_SPLIT, MOST_SPLIT = 1e-6, 1e6
@@ -105,6 +106,25 @@ def fit_block(block: Block, reported: FloatArray | None) -> Iterator[Outcome]:
             yield from _fit_group(block, group, reported)
         else:
             yield group
+
+
+def fitted(series: Account, rows: slice | IntArray, start: FloatArray | None = None) -> FloatArray:
+    """Return the unknowns of some samples of a series, shape (m, n).
+
+    Not numbers of one without an account. They are started at ``start``, shape (n,)
+    or (m, n), where given.
+    """
+    ready = prepare(series, rows, start)
+    found = np.full((len(ready.measured), len(series.unknowns)), np.nan)
+    for outcome in fit_block(ready, series.reported):
+        if not isinstance(outcome, Fitted):
+            continue
+        found[outcome.rows] = outcome.z
+        found[np.ix_(outcome.rows, outcome.absent)] = 0.0
+        if series.split >= 0:
+            lost = still_open(series, outcome, ready.active[outcome.rows])
+            found[outcome.rows[lost]] = np.nan
+    return found
 
 
 def _fit_group(block: Block, group: Group, reported: FloatArray | None) -> Iterator[Outcome]:

@@ -21,6 +21,7 @@ from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import refuse
 from core.rates.constants import TemperatureDependent, Values, activation
+from core.records import record
 from core.streams.stream import Stream
 
 Driving = Literal["concentration", "partial-pressure", "mole-fraction"]
@@ -150,7 +151,7 @@ class FlooredFactor:
         return value - columns(total) if self.of_total else value
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class PowerProduct:
     """A product of powers of the concentrations.
 

@@ -408,12 +408,13 @@ class RateLaw:
         subject = rate_subject(reactions, reaction)
         where = (*subject, "constant")
         product = self._one_way(self.constant, self.orders, stream, where, follow=follow)
-        factors = np.log(positive(self.activity, (*subject, "activity"), "activity"))
-        if not isinstance(self.effectiveness, Pellet):
-            factors = factors + np.log(
-                positive(self.effectiveness, (*subject, "effectiveness"), "effectiveness")
-            )
-        return replace(product, ln_factor=product.ln_factor + factors)
+        for name in ("activity", "effectiveness"):
+            factor = getattr(self, name)
+            # Mostly a plain 1, which need not be looked at.
+            if factor != 1.0 if isinstance(factor, float) else not isinstance(factor, Pellet):
+                ln_factor = np.log(positive(factor, (*subject, name), name))
+                product = replace(product, ln_factor=product.ln_factor + ln_factor)
+        return product
 
     def hindrances(
         self, reactions: ReactionSet, reaction: int, stream: Stream, *, follow: bool = False
@@ -530,7 +531,12 @@ class RateLaw:
         return replace(product, ln_factor=ln_factor, floored=tuple(floored))
 
     def check_absences(
-        self, reactions: ReactionSet, reaction: int, absent: np.ndarray, orders: FloatArray
+        self,
+        reactions: ReactionSet,
+        reaction: int,
+        absent: np.ndarray,
+        orders: FloatArray,
+        term: tuple[int, int] | None = None,
     ) -> None:
         """Refuse a negative order, not held by a floor, of a substance that is absent.
 
@@ -541,8 +547,9 @@ class RateLaw:
         absent : ndarray of bool, shape (N, S)
             Absent somewhere on the way.
         orders : ndarray, shape (N, S)
-            Those that stand without a floor, reverse ones and those in the
-            denominator included as they act.
+            Those that stand without a floor, reverse ones included as they act.
+        term : tuple of int, optional
+            Of which factor of the denominator, and which term in it, they are.
 
         Raises
         ------
@@ -554,14 +561,20 @@ class RateLaw:
             return
         names = reactions.names
         i = int(np.flatnonzero(bad.any(axis=0))[0])
+        where, value, mend = rate_subject(reactions, reaction), "bound", "or feed some of it"
+        if term is not None:
+            where, value = (*where, "denominator", term[0], "terms", term[1]), "value"
+        else:
+            mend = "feed some of it, or give the reverse rate orders of its own"
         raise refuse(
             "negative-order-needs-floor",
-            (*rate_subject(reactions, reaction), "orders", names[i]),
+            (*where, "orders", names[i]),
             "the order of {name} acts as {order}, and {name} is absent at the feed or at the "
-            "target, where such a rate has no bound; state a floor for {name}, feed some of it, "
-            "or give the reverse rate orders of its own",
+            "target, where such a rate has no {value}; state a floor for {name}, {mend}",
             name=names[i],
             order=f"{orders[bad[:, i], i][0]:.6g}",
+            value=value,
+            mend=mend,
         )
 
 

@@ -7,6 +7,7 @@ size, the variable is (1 - X/X_limit) to the power that makes it smooth.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -23,6 +24,7 @@ _RTOL = 1e-12
 _ENDS: FloatArray = np.array([0.0, 1.0])
 _DIED = -30 * float(np.log(10.0))  # of a rate that the fall of temperature alone has taken
 _LARGEST_U = 700.0
+_PANEL = 4.0  # in u, of one case
 
 
 @dataclass(frozen=True, eq=False)
@@ -85,6 +87,11 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
     check_alive(path, reactions, there, rate)
 
     edges, position = _with_kinks(path, u)
+    if n == 1 and position is None and u.shape[1] == 2 and 0 < u[0, 1] < _LARGEST_U:
+        # One case is soonest done with panels that need not be halved.
+        parts = math.ceil(u[0, 1] / _PANEL)
+        edges = np.arange(parts + 1)[None, :] * (u[:, 1:] / parts)
+        edges[0, -1] = u[0, 1]
     panels = edges.shape[1] - 1
     variable = Variable.of(path)
     if variable.complete is not None and (variable.complete & (variable.power <= 0)).any():
@@ -107,7 +114,9 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
     steps = found.values.reshape(-1, n, panels)
     sums = np.zeros((len(steps), n, panels + 1))
     np.cumsum(steps, axis=2, out=sums[:, :, 1:])
-    if position is not None:
+    if position is None:
+        sums = sums[:, :, :: panels // (u.shape[1] - 1)]
+    else:
         sums = np.take_along_axis(sums, np.broadcast_to(position, (len(sums), *u.shape)), axis=2)
     return Advance(
         conversion=share * path.target[:, None],
@@ -221,7 +230,7 @@ class Variable:
         root = None
         if path.opposing is not None:
             begins = path.opposing_order_at_start()
-            broken = (begins > 0) & (begins != np.round(begins))
+            broken = (begins > 0) & (begins % 1.0 != 0)
             if ends:
                 broken = broken & ~complete
             if broken.any():

@@ -15,7 +15,8 @@ L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM, 2013, ch
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+import math
+from functools import cached_property
 
 import numpy as np
 from numpy.polynomial.legendre import leggauss, legvander
@@ -27,6 +28,7 @@ from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.advance import Integrand, Variable, does_not_start, kinks_of
 from core.reactors.path import Place, ReactionPath, check_end
+from core.records import record
 from core.streams.stream import Stream
 
 _ORDER = 20
@@ -41,6 +43,7 @@ _WIDEST = 2.0  # of the first panel, in u
 _FURTHEST = 700.0  # u beyond which the rest of the way is no normal number
 _RESOLVED = 1e-12  # last coefficients of a series over its mean
 _COARSE = 1e-9  # the same, where halving no longer helps because the rate itself is no better
+_NOTHING = 1e-18  # of the size so far: a panel that adds no more is passed as it is
 _MOST_HALVINGS = 60
 _MOST_PANELS = 2000
 _BLOCK = 1024  # panels evaluated in one call
@@ -49,6 +52,15 @@ _AT_ONCE: FloatArray = np.array(
     [0.0, 0.05, 0.2, 0.5, 1.0, 2.0, 3.0, 4.0, 5.5, 7.0, 8.5, 10.0, 12.0, 14.0, 16.0]
 )
 """Edges of the panels that one case looks at together; u = 16 leaves a tenth of a millionth."""
+
+
+def _panel_nodes(edges: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Return nodes of the panels between edges, shape (p, 20), and the panels' widths, (p,)."""
+    width = np.diff(edges)
+    return edges[:-1, None] + width[:, None] * (0.5 + 0.5 * _NODES), width
+
+
+_NODES_AT_ONCE, _WIDTHS_AT_ONCE = _panel_nodes(_AT_ONCE)
 _ROUNDING = 4 * float(np.finfo(float).eps)
 
 
@@ -125,7 +137,7 @@ def conversion_at(
     return reached
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class _Panels:
     """Series of the integrand on panels, m of them.
 
@@ -149,14 +161,15 @@ class _Panels:
     def tail(self) -> FloatArray:
         """Last coefficients over the mean, shape (m,)."""
         last: FloatArray = np.abs(self.series[:, -3:]).max(axis=1)
-        return np.asarray(last / np.abs(self.series[:, 0]))
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            return np.asarray(last / np.abs(self.series[:, 0]))
 
     @property
     def at_end(self) -> FloatArray:
         """Integrand at the end of each, shape (m,)."""
         return np.asarray(self.series.sum(axis=1))
 
-    def rows(self, some: IndexArray | BoolArray) -> _Panels:
+    def rows(self, some: IndexArray | BoolArray | slice) -> _Panels:
         """Return some of them."""
         return _Panels(self.start[some], self.width[some], self.series[some])
 
@@ -192,7 +205,11 @@ _RECURRENCE = [((2 * k + 1) / (k + 1), k / (k + 1), 1 / (2 * k + 1)) for k in ra
 
 def _where_in_one(series: list[float], part: float) -> float:
     """Return t where the integral of one series from -1 is as given, as :meth:`_Panels.where`."""
-    low, high, t = -1.0, 1.0, min(max(-1.0 + part / series[0], -1.0), 1.0)
+    low, high, mean, bend = -1.0, 1.0, series[0], series[1]
+    # Where a straight line through the panel has it: mean (1 + t) - bend (1 - t^2)/2.
+    span = (mean - bend) ** 2 + 2.0 * bend * part
+    t = 2.0 * part / (mean - bend + math.sqrt(span)) - 1.0 if span > 0 and bend < mean else 0.0
+    t = min(max(t, -1.0), 1.0)
     for _ in range(100):
         before, now = 1.0, t
         total, slope = series[0] * (1.0 + t), series[0]
@@ -247,10 +264,15 @@ class _March:
         self.by_volume = by_volume and path.volume_changes
         self.variable = Variable.of(path, to_end=False)
         self.integrand = Integrand(path, self.variable)
-        ends: FloatArray = np.full((path.size, 1), _FURTHEST)
-        self.furthest = self.variable.from_u(ends)[:, 0]
-        kinks = kinks_of(path, ends[:, 0])
-        self.kinks = None if kinks is None else self.variable.from_u(kinks)
+        self.kinks = kinks_of(path, np.full(path.size, _FURTHEST))
+        if self.kinks is not None:
+            self.kinks = self.variable.from_u(self.kinks)
+
+    @cached_property
+    def furthest(self) -> FloatArray:
+        """The variable at u = 700, shape (N,)."""
+        ends: FloatArray = np.full((self.path.size, 1), _FURTHEST)
+        return self.variable.from_u(ends)[:, 0]
 
     def find(self, case: IndexArray) -> FloatArray:
         """Return u at which the cases reach what is wanted, at most 700, shape (m,)."""
@@ -278,20 +300,22 @@ class _March:
         edges, wanted = _AT_ONCE, float(self.wanted[case[0]])
         if self.variable.root is not None:
             edges = edges ** (1.0 / float(self.variable.root[case[0]]))
-        x = edges[:-1, None] + np.diff(edges)[:, None] * (0.5 + 0.5 * _NODES)
+            x, width = _panel_nodes(edges)
+        else:
+            x, width = _NODES_AT_ONCE, _WIDTHS_AT_ONCE
         y = self._values(case, x.reshape(1, -1)).reshape(x.shape)
         with np.errstate(invalid="ignore", over="ignore"):
-            panels = _Panels(edges[:-1], np.diff(edges), y @ _SERIES)
-            sums = np.cumsum(panels.integral)
-        if not sums[0] > 0:
+            panels = _Panels(edges[:-1], width, y @ _SERIES)
+            sums = panels.integral.cumsum()
+        at = int(sums.searchsorted(wanted))
+        if at >= len(sums) or not (panels.rows(slice(at + 1)).tail <= _RESOLVED).all():
             return None
-        at = int(np.searchsorted(sums, wanted))
-        if at >= len(sums) or not (panels.tail[: at + 1] <= _RESOLVED).all():
+        if at == 0 and not wanted >= _SHALLOW * sums[0]:
             return None
-        before = float(sums[at - 1]) if at else 0.0
-        if at == 0 and wanted < _SHALLOW * sums[0]:
-            return None
-        return panels.rows(np.array([at])).where(np.array([wanted - before]))
+        part = wanted - (float(sums[at - 1]) if at else 0.0)
+        width = panels.width[at : at + 1]
+        only = _where_in_one(panels.series[at].tolist(), part / (0.5 * float(width[0])))
+        return panels.start[at : at + 1] + 0.5 * width * (1.0 + only)
 
     def _outward(self, case: IndexArray) -> FloatArray:
         """Return the variable of each case, one panel of each at a time."""
@@ -311,7 +335,8 @@ class _March:
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 panels = self._panels(case, start, width)
                 whole, tail = panels.integral, panels.tail
-            good = (tail <= _RESOLVED) | (halved >= 8) & (tail <= _COARSE)
+                nothing = width * np.abs(panels.series).sum(axis=1) <= _NOTHING * done
+            good = (tail <= _RESOLVED) | (halved >= 8) & (tail <= _COARSE) | nothing
             inside = good & (done + whole >= wanted)
             # What lies near the start of the first panel is better seen in a smaller one.
             small = inside & (start == 0) & (wanted < _SHALLOW * whole)
@@ -328,8 +353,8 @@ class _March:
             result[place[at_end]] = self.furthest[case[at_end]]
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 ahead = 2.0 * (wanted - done) / panels.at_end
+                shrunk = np.where(small, 2.0 * width * wanted / whole, 0.5 * width)
             ahead = np.where(ahead > 0, ahead, np.inf)
-            shrunk = np.where(small, 2.0 * width * wanted / whole, 0.5 * width)
             width = np.where(passed, np.minimum(2.0 * width, ahead), shrunk)
             halved = np.where(bad, halved + 1, 0)
             on = ~(inside | at_end)

@@ -368,7 +368,7 @@ class _Finder:
             hold=hold,
             temperature=self.leaving if hold.startswith("temperature") else None,
             pressure=self.outcome.outlet.pressure if moved else None,
-            equation=None if gas is None else gas.equation,
+            gas=gas,
             properties=None if both is None or hold.startswith("temperature") else both[0],
             heats=None if both is None else both[1],
         )
@@ -416,9 +416,8 @@ class _Finder:
             else Measurement(float(pressure), 0.0, ("feed", "pressure")),
             volume=float(volume) if volume is not None and out.phase == "liquid" else None,
         )
-        gas = problem.gas
         try:
-            found, notes = approaches(stated, outlet, None if gas is None else gas.equation)
+            found, notes = approaches(stated, outlet, problem.gas)
         except Refused as refused:
             first = refused.faults[0]
             why = f"no approach is given: {first.detail}"

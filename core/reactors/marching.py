@@ -39,17 +39,21 @@ PLACES = 201
 """States along a reactor that are kept, evenly over its size."""
 
 RTOL = 1e-10
+_ROUGH = 1e-6
+"""The same for shots that only look where to aim."""
 _ATOL = 1e-13  # of the total flow, or of the state itself
 _EXHAUSTED = 1e-3  # of the pressure at the inlet
 _DECADES = range(-6, 15)  # of the size that the inlet's rates suggest
 _STANDS = 1e-13  # of the total flow: less is no change
 _GUESSES = 25
 """Utility outlet temperatures that are tried before they are bracketed."""
+_OF_A_SHOT = 300  # evaluations, about, of one that is given up
+_MESH = 5_000  # places, at most, where shooting does not resolve
 _SHOT = 1e-9  # K, to which the temperature that the utility leaves with is found
 _MET = 1e-5  # K, to which it then enters at its own
-_COLDEST, _HOTTEST = 20.0, 8000.0  # K, of a utility in a shot
+_COLDEST = 20.0  # K, of a utility in a shot
+_ASTRAY = 300.0  # K, beyond all temperatures that it may leave with: there a shot is given up
 _FAR = 1e4  # K, that a shot misses by which leaves these
-_MESH = 20_000  # places, at most, where shooting does not resolve
 
 
 LegEvent: TypeAlias = tuple[Event, ...]
@@ -60,7 +64,7 @@ LegEvent: TypeAlias = tuple[Event, ...]
 class Work:
     """Evaluations of the balances that one request may still take."""
 
-    left: int = 2 * MOST_EVALUATIONS
+    left: int = MOST_EVALUATIONS + MOST_EVALUATIONS // 2
     spent: int = field(default=0)
 
     def take(self, evaluations: int) -> None:
@@ -86,6 +90,7 @@ class Marcher:
 
     observer: Observer
     work: Work = field(default_factory=Work)
+    rtol: float = RTOL
 
     def __post_init__(self) -> None:
         self.balances = self.observer.balances
@@ -97,8 +102,26 @@ class Marcher:
         legs = (True, False) if self.balances.fed is not None else (None,)
         self._legs = [replace(self.balances, feeding=leg) for leg in legs]
         self._runs = [_beside_time(each, flow) for each in self._legs]
+        if self._against:
+            self._runs = [self._within_sense(run) for run in self._runs]
         self._outset: FloatArray = np.array(self._runs[0](0.0, [*y.tolist(), 0.0]))
         self.events = self._ends()
+
+    def _within_sense(
+        self, run: Callable[[float, Sequence[float]], list[float]]
+    ) -> Callable[[float, Sequence[float]], list[float]]:
+        """Return slopes that give a shot up where its utility goes astray."""
+        at = self.balances.layout.utility
+        assert at is not None
+        low, high = self._utility_range()
+        low, high = max(low - _ASTRAY, _COLDEST), high + _ASTRAY
+
+        def within(x: float, state: Sequence[float]) -> list[float]:
+            if not low < state[at] < high:
+                raise _Astray(state[at] >= high)
+            return run(x, state)
+
+        return within
 
     @property
     def _subject(self) -> tuple[str, ...]:
@@ -116,12 +139,6 @@ class Marcher:
             least = _EXHAUSTED * float(self.balances.start()[at])
             found.append(("pressure", Event(lambda _, y: y[at] - least, -1), at))
         problem, flows = self.balances.problem, self.balances.feed.flows
-        if self._against:
-            utility = self.balances.layout.utility
-            assert utility is not None
-            for name, limit, side in (("cold", _COLDEST, -1), ("hot", _HOTTEST, 1)):
-                value = _component(utility, limit)
-                found.append((name, Event(value, side), utility))
         for i in self._not_fading():
             made = (problem.reactions.nu[:, i] > 0).any()
             if flows[i] > 0 or made:
@@ -189,7 +206,7 @@ class Marcher:
             x,
             y0,
             atol=self._tolerances(self.balances.start()),
-            rtol=RTOL,
+            rtol=self.rtol,
             events=(*(event for _, event, _ in self.events), *(event[leg] for event in events)),
             most=self.work.most,
             subject=self._subject,
@@ -255,10 +272,9 @@ class Marcher:
             return self._made(x, marched.y, ())
         last = marched.crossings[-1]
         name, _, which = self.events[last.event]
-        if name in ("cold", "hot"):
-            raise _Astray(name == "hot")
         if name == "pressure":
-            raise self._pressure_exhausted(last.x, size, marched.y_end)
+            refusal = self._pressure_exhausted(last.x, size, marched.y_end)
+            raise self._short(marched.y_end, refusal) if self._against else refusal
         problem = self.balances.problem
         if len(problem.laws) > 1 or self.balances.fed is not None:
             raise self._exhausted(which, last.x)
@@ -316,10 +332,9 @@ class Marcher:
                 if last.event == number:
                     return last.x
                 name, _, which = self.events[last.event]
-                if name in ("cold", "hot"):
-                    raise _Astray(name == "hot")
                 if name == "pressure":
-                    raise self._pressure_exhausted(last.x, None, found.y_end)
+                    refusal = self._pressure_exhausted(last.x, None, found.y_end)
+                    raise self._short(found.y_end, refusal) if self._against else refusal
                 if len(self.balances.problem.laws) > 1:
                     raise self._exhausted(which, last.x)
                 raise self._out_of_reach(target, found.y_end[:-1], last.x)
@@ -368,6 +383,13 @@ class Marcher:
         )
         return Refused([_fault("pressure-exhausted", ("reactor",), detail, facts)])
 
+    def _short(self, y: FloatArray, refusal: Refused) -> _Astray:
+        """Return a shot that ended before the reactor, on the side where the utility was."""
+        thermal, at = self.balances.problem.thermal, self.balances.layout.utility
+        assert isinstance(thermal, Exchange)
+        assert at is not None
+        return _Astray(bool(y[at] > thermal.utility_temperature), refusal)
+
     def _exhausted(self, substance: int, x: float) -> Refused:
         names = self.balances.problem.reactions.names
         detail = (
@@ -389,12 +411,16 @@ class Marcher:
         assert at is not None
         wanted = thermal.utility_temperature
         known: dict[float, Course | None] = {}
+        short: list[Refused] = []
 
         def miss(leaving: float) -> float:
             known[leaving] = None
             try:
                 known[leaving] = found = course(balances.start(leaving))
             except _Astray as shot:
+                self.work.take(_OF_A_SHOT)
+                if shot.refusal is not None:
+                    short.append(shot.refusal)
                 return _FAR if shot.hot else -_FAR
             except Refused as refused:
                 if refused.faults[0].code == "compute-budget":
@@ -402,24 +428,30 @@ class Marcher:
                 return float("nan")
             return float(found.y[-1, at]) - wanted
 
-        low, high = self._utility_range(wanted)
+        low, high = self._utility_range()
         guesses = np.unique(np.append(np.linspace(low, high, _GUESSES), wanted))
+        self.rtol = _ROUGH
         misses = np.array([miss(float(guess)) for guess in guesses])
+        self.rtol = RTOL
+        # What a shot was refused for says nothing of which side it is on.
+        told = np.isfinite(misses)
+        if told.any():
+            guesses, misses = guesses[told], misses[told]
         solutions: list[tuple[float, Course]] = []
         unresolved = False
         for k in range(len(guesses) - 1):
             a, b = misses[k], misses[k + 1]
-            if a == 0:
-                solutions.append((float(guesses[k]), known[float(guesses[k])]))  # type: ignore[arg-type]
-            elif a * b < 0:
-                leaving = _bracketed(miss, float(guesses[k]), float(guesses[k + 1]), float(a))
-                found = known.get(leaving)
+            if a == 0 or a * b < 0:
+                aim = self._aim(
+                    miss, (float(guesses[k]), float(a)), (float(guesses[k + 1]), float(b))
+                )
+                found = known.get(aim) if aim is not None else None
                 if found is not None and abs(float(found.y[-1, at]) - wanted) <= _MET:
-                    solutions.append((leaving, found))
-                elif min(abs(a), abs(b)) <= _FAR:
+                    solutions.append((float(found.y[0, at]), found))
+                else:
                     unresolved = True
-        if misses[-1] == 0:
-            solutions.append((float(guesses[-1]), known[float(guesses[-1])]))  # type: ignore[arg-type]
+        if unresolved and short:
+            raise short[-1]
         if unresolved:
             raise _Unresolved
         if not solutions:
@@ -504,9 +536,35 @@ class Marcher:
             ]
         )
 
-    def _utility_range(self, wanted: float) -> tuple[float, float]:
+    def _aim(
+        self, miss: Callable[[float], float], low: tuple[float, float], high: tuple[float, float]
+    ) -> float | None:
+        """Return the temperature to leave with: roughly first, then to the last digits."""
+        if low[1] == 0:
+            rough = low[0]
+        else:
+            self.rtol = _ROUGH
+            rough = _bracketed(miss, low, high, 1e-3)
+            self.rtol = RTOL
+        middle = miss(rough)
+        if abs(middle) <= _MET:
+            return rough
+        step = 1e-3
+        while step < high[0] - low[0]:
+            for other in (max(rough - step, low[0]), min(rough + step, high[0])):
+                value = miss(other)
+                if value * middle <= 0:
+                    ends = sorted([(rough, middle), (other, value)])
+                    return _bracketed(miss, ends[0], ends[1], _SHOT)
+            step *= 8.0
+        return None
+
+    def _utility_range(self) -> tuple[float, float]:
         """Return between which temperatures the utility leaves, at the widest looked at."""
         balances = self.balances
+        thermal = balances.problem.thermal
+        assert isinstance(thermal, Exchange)
+        wanted = thermal.utility_temperature
         heats, feed = balances.heats, balances.feed
         assert feed.temperature is not None
         assert heats is not None
@@ -567,30 +625,32 @@ def _first_of(
     return lambda at, state: run(at, state[:-1])[0]
 
 
-def _component(i: int, less: float = 0.0) -> Callable[[float, Sequence[float]], float]:
-    return lambda _, y: y[i] - less
+def _component(i: int) -> Callable[[float, Sequence[float]], float]:
+    return lambda _, y: y[i]
 
 
 class _Astray(Exception):  # noqa: N818 - a shot that missed
     """The utility left all temperatures of sense; whether it got too hot."""
 
-    def __init__(self, hot: bool) -> None:
-        self.hot = hot
+    def __init__(self, hot: bool, refusal: Refused | None = None) -> None:
+        self.hot, self.refusal = hot, refusal
 
 
 class _Unresolved(Exception):  # noqa: N818
     """The utility's temperature at one end hangs too steeply on that at the other."""
 
 
-def _bracketed(f: Callable[[float], float], low: float, high: float, at_low: float) -> float:
-    """Return where f crosses zero between two ends, by Brent's method."""
-    first = [at_low]
+def _bracketed(
+    f: Callable[[float], float], low: tuple[float, float], high: tuple[float, float], xtol: float
+) -> float:
+    """Return where f crosses zero between two places, by Brent's method, having been there."""
+    ends = {low[0]: low[1], high[0]: high[1]}
 
     def g(x: float) -> float:
-        value = first[0] if x == low else f(x)
-        return value if np.isfinite(value) else at_low
+        value = ends[x] if x in ends else f(x)
+        return value if np.isfinite(value) else low[1]
 
-    root = float(brentq(g, low, high, xtol=_SHOT, rtol=1e-14))
+    root = float(brentq(g, low[0], high[0], xtol=xtol, rtol=1e-14))
     f(root)
     return root
 

@@ -39,6 +39,7 @@ from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.adiabat import Adiabat, adiabat
 from core.reactors.single_case import SingleCase
+from core.records import record
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats
 
@@ -48,10 +49,11 @@ _FAR = 690.0  # logit beyond which the rest of the way is no normal number
 # may be several.
 _ONE: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 17))
 _SCAN: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 257))
+_ALMOST = -600.0  # ln of what is left where a limit is looked for
 _SCAN_BLOCK = 500  # cases scanned at a time
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class Place:
     """Where N cases, or some of them several times, stand on their way.
 
@@ -86,7 +88,7 @@ class Trend(Enum):
     MIXED = "mixed"
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class Account:
     """Amounts at both ends of the way and their changes along it, N cases.
 
@@ -138,7 +140,7 @@ class Account:
         return np.where(self.change < 0, self.end - self.change * left[:, None], rise)
 
 
-@dataclass(frozen=True, eq=False)
+@record(eq=False)
 class ReactionPath:
     """The way from the feed to the limit, and the rate along it; N cases.
 
@@ -338,6 +340,8 @@ class ReactionPath:
         along, net = self.ln_rate(place)
         with np.errstate(over="ignore", invalid="ignore"):
             rate: FloatArray = np.broadcast_to(np.exp(along) * net, place.left.shape)
+        if self.hindrances and np.isnan(rate).any():
+            rate = self._where_all_vanishes(place, rate)
         if not np.isfinite(rate).all():
             raise refuse(
                 "rate-not-finite",
@@ -346,6 +350,15 @@ class ReactionPath:
                 "its orders and their units",
             )
         return rate
+
+    def _where_all_vanishes(self, place: Place, rate: FloatArray) -> FloatArray:
+        """Return rates with their limit at the end, where a denominator vanishes with them."""
+        at_end = np.isnan(rate) & (place.left == 0)
+        almost = np.where(at_end, _ALMOST, place.ln_left)
+        along, net = self.ln_rate(Place(place.case, np.exp(almost), place.gone, almost))
+        fades = self.order_at_exhaustion()[place.case, None] > 0
+        limit = np.where(fades, 0.0, np.exp(along) * net)
+        return np.where(at_end, limit, rate)
 
     def ln_above_floor(self, factor: FlooredFactor, place: Place) -> FloatArray:
         """Return the logarithm of a driving force over its floor, shape (m, q)."""
@@ -360,8 +373,7 @@ class ReactionPath:
         """Return the power of the way gone that the opposing rate begins with, shape (N,)."""
         if self.opposing is None:
             return np.zeros(self.size)
-        absent = self.account.start[:, :-1] == 0
-        begins: FloatArray = (absent * self.opposing.exponents).sum(axis=1)
+        begins: FloatArray = _powers_of(self.opposing, self.account.start[:, :-1] == 0)
         return begins
 
     def order_at_exhaustion(self) -> FloatArray:
@@ -393,7 +405,7 @@ _WHOLE: FloatArray = np.ones((1, 1))
 
 
 def _powers_of(product: PowerProduct, gone: BoolArray) -> FloatArray:
-    found: FloatArray = np.where(gone, product.exponents, 0.0).sum(axis=1)
+    found: FloatArray = np.add.reduce(gone * product.exponents, axis=1)
     return found
 
 
@@ -518,13 +530,9 @@ def reaction_path(
     hindrances = law.hindrances(reactions, 0, feed, follow=follow)
     pores = law.pores(reactions, 0, feed, follow=follow)
     asked = np.zeros(()) if target is None else np.asarray(target, dtype=float)
-    lead = np.broadcast_shapes(
-        feed.flows.shape[:-1],
-        volumetric_flow.shape,
-        asked.shape,
-        over,
-        *_shapes(forward, ratio, hindrances, pores),
-    )
+    shapes = [feed.flows.shape[:-1], volumetric_flow.shape, asked.shape, over]
+    shapes += _shapes(forward, ratio, hindrances, pores)
+    lead = np.broadcast_shapes(*shapes) if any(shapes) else ()
     n = math.prod(lead)
 
     def flat(a: FloatArray) -> FloatArray:
@@ -559,12 +567,13 @@ def reaction_path(
     at_equilibrium = np.zeros(n, dtype=bool)
     opposing = None
     if ratio is not None:
-        smallest, product = _reach(start, slope)
         onward, unmoved = _direction(ratio, start, np.log(c0), largest)
-        ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
-        exhausted = np.where(onward < 0, product, reactant)
-        opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
-        if (onward < 0).any():
+        opposing = ratio
+        if not (onward > 0).all():
+            smallest, product = _reach(start, slope)
+            ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
+            exhausted = np.where(onward < 0, product, reactant)
+            opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
             forward = forward.times(ratio.to_the(np.where(onward < 0, 1.0, 0.0)))
     at_range = np.zeros(n, dtype=bool)
     if warm is not None and (opposing is not None or target is None):
@@ -584,12 +593,13 @@ def reaction_path(
         # From the nearer end, which is where the limit is known best.
         distance = np.where(found & (share > 0.5), distance - ahead * rest, limit - asked)
     if target is None:
-        asked, distance = limit, np.zeros(n)
-    with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
-        gone = np.where(asked == 0, 0.0, asked / limit)
-        left = np.where(asked == 0, 1.0, distance / limit)
-    # A target that cannot be told from complete conversion is complete conversion.
-    left = np.where(~at_equilibrium & (np.abs(left) <= 2 * _EPS), 0.0, left)
+        asked, gone, left = limit, np.ones(n), np.zeros(n)
+    else:
+        with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
+            gone = np.where(asked == 0, 0.0, asked / limit)
+            left = np.where(asked == 0, 1.0, distance / limit)
+        # A target that cannot be told from complete conversion is complete conversion.
+        left = np.where(~at_equilibrium & (np.abs(left) <= 2 * _EPS), 0.0, left)
     path = ReactionPath(
         lead=lead,
         key_flow=key_flow,
@@ -750,10 +760,25 @@ def _to_end(start: FloatArray, slope: FloatArray, x: FloatArray) -> Account:
     return Account(start, change, end)
 
 
+def _value_of_one(product: PowerProduct, amounts: list[float], ln_c0: float) -> float | None:
+    """Return the logarithm of a product at the feed, of one case; None if it has none."""
+    total = float(product.ln_factor[0])
+    for power, amount in zip(product.exponents[0].tolist(), amounts, strict=False):
+        if power:
+            if amount == 0:
+                return None
+            total += power * (ln_c0 + math.log(amount))
+    return total
+
+
 def _direction(
     ratio: PowerProduct, start: FloatArray, ln_c0: FloatArray, largest: FloatArray
 ) -> tuple[FloatArray, BoolArray]:
     """Return the sign of the net reaction at the feed, and where it is at equilibrium."""
+    if len(start) == 1 and not ratio.floored:
+        total = _value_of_one(ratio, start[0].tolist(), float(ln_c0[0]))
+        if total is not None:
+            return np.array([-1.0 if total > 0 else float(total < 0)]), np.array([total == 0])
     with np.errstate(divide="ignore", invalid="ignore"):
         ln = np.log(start)
         value = ratio.ln_value(lambda j: (ln_c0 + ln[:, j])[:, None], lambda a: a[:, None])[:, 0]
@@ -964,13 +989,17 @@ def check_end(
         ``negative-order-needs-floor``, ``phase-vanishes``.
     """
     account, ends = path.account, complete[:, None]
-    terms = [term for hindrance in path.hindrances for term in hindrance.terms]
-    for product in (path.rate, *terms):
+    terms = [
+        (term, (i, t))
+        for i, hindrance in enumerate(path.hindrances)
+        for t, term in enumerate(hindrance.terms)
+    ]
+    for product, place in ((path.rate, None), *terms):
         orders = product.exponents[:, :-1]
         if orders.min() < 0:
             s = orders.shape[1]
             absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & ends
-            law.check_absences(reactions, 0, absent, orders)
+            law.check_absences(reactions, 0, absent, orders, place)
     if ((account.end[:, -2:] == 0) & ends).any():
         raise refuse(
             "phase-vanishes",

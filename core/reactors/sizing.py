@@ -271,7 +271,7 @@ def outlet_stream(problem: SizingProblem, path: ReactionPath, *, constant_volume
     there = account.up_to(path.target_gone, path.target_left)
     substances = there.shape[1] - 2
     flows = (path.key_flow[:, None] * there[:, :substances]).reshape(*lead, substances)
-    warmth = path.warmth(target_place(path))
+    warmth = None if path.adiabat is None else path.warmth(target_place(path))
     temperature, pressure = feed.temperature, feed.pressure
     warmer: FloatArray | float = 1.0
     if warmth is not None:
@@ -307,4 +307,5 @@ def limit_of(path: ReactionPath) -> Limit:
 
 def signed(path: ReactionPath, rate: FloatArray) -> FloatArray:
     """Return a rate in the direction of travel, shape (N, q), as one of consumption of the key."""
-    return rate * np.where(path.limit < 0, -1.0, 1.0)[:, None]
+    backward = path.limit < 0
+    return np.where(backward[:, None], -rate, rate) if backward.any() else rate

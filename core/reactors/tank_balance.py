@@ -41,6 +41,8 @@ _EPS = float(np.finfo(float).eps)
 _MOST_STEPS = 200
 _NEWTON_ALONE = 50
 """Steps after which the interval is halved, as a function that is not smooth may need."""
+_CLOSED = 1e-12
+"""Of T, between whose bounds nothing more is to be told: polynomials in T round."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -236,6 +238,8 @@ class TankBalance:
             if trial > _NEWTON_ALONE:
                 inside &= False
             done = (np.abs(left) <= rounding) | (np.abs(step) <= 2 * _EPS * t) | (ahead == t)
+            # Heat capacities of high powers round by more than their sum says.
+            done |= high - low <= _CLOSED * t
             if done.any():
                 found[rows[done]] = ahead[done]
                 error = (np.abs(left) + rounding) / slope + 4 * _EPS * t

@@ -85,7 +85,7 @@ class GasState:
     Attributes
     ----------
     compressibility : ndarray, shape (N,)
-        Z of the root with the lowest Gibbs energy.
+        Z of the root that was asked for.
     ln_fugacity_coefficients : ndarray, shape (N, S)
     residual_enthalpy : ndarray, shape (N,)
         h less that of the ideal gas, J/mol.
@@ -160,7 +160,14 @@ class CubicEquation:
         dda = 2 * (y * (dds * with_s + ds * with_ds)).sum(axis=1)
         return a, each, da, dda
 
-    def state(self, temperature: FloatArray, pressure: FloatArray, amounts: FloatArray) -> GasState:
+    def state(
+        self,
+        temperature: FloatArray,
+        pressure: FloatArray,
+        amounts: FloatArray,
+        *,
+        of_gas: bool = False,
+    ) -> GasState:
         """Return the state at a temperature and a pressure.
 
         Parameters
@@ -169,6 +176,9 @@ class CubicEquation:
             K and Pa.
         amounts : ndarray, shape (N, S)
             In any unit, not all zero.
+        of_gas : bool
+            The largest root, as of :meth:`compressibility_of_gas`; else that of the
+            lowest Gibbs energy.
         """
         form, _, b_each, _, _ = self._parameters
         y = amounts / amounts.sum(axis=1, keepdims=True)
@@ -176,7 +186,10 @@ class CubicEquation:
         b = y @ b_each
         rt = GAS_CONSTANT * temperature
         big_a, big_b = a * pressure / rt**2, b * pressure / rt
-        z = self._root(big_a, big_b)
+        if of_gas:
+            z, _ = _outer_roots(*_cubic(form, big_a, big_b))
+        else:
+            z = self._root(big_a, big_b)
         span = form.d1 - form.d2
         log = np.log1p(span * big_b / (z + form.d2 * big_b))
         ratio = b_each / b[:, None]
@@ -215,6 +228,19 @@ class CubicEquation:
         loops = a / (b * rt) > form.factor_a / form.factor_b
         dense = z / big_b < form.critical_z / form.factor_b
         return np.where((z > big_b) & ~(loops & dense), z, np.nan)
+
+    def packing(
+        self,
+        temperature: FloatArray,
+        pressure: FloatArray,
+        amounts: FloatArray,
+        compressibility: FloatArray,
+    ) -> FloatArray:
+        """Return the share of the volume that the molecules take, b/v, shape (N,)."""
+        _, _, b_each, _, _ = self._parameters
+        b = (amounts @ b_each) / amounts.sum(axis=1)
+        share: FloatArray = b * pressure / (compressibility * GAS_CONSTANT * temperature)
+        return share
 
     def pressure(
         self, temperature: FloatArray, volume: FloatArray, amounts: FloatArray

@@ -13,7 +13,7 @@ from core.errors import Amount, Fault, Note, Refused, Subject, refuse
 from core.reactions.reaction_set import ReactionSet
 from core.real_gas.condensation import would_condense
 from core.real_gas.cubic import CubicEquation, GasModel
-from core.real_gas.remarks import remark_on_gas
+from core.real_gas.remarks import remark_on_gas, remark_on_packing
 from core.substances.property_data import CriticalConstants, Entry, critical_constants
 
 
@@ -57,6 +57,22 @@ class KnownGas:
         t, p, inside = self._rows(temperature, pressure, flows)
         z = self.equation.compressibility_of_gas(t, p, inside)
         return z.reshape(flows.shape[:-1])
+
+    def ln_fugacity_coefficients(
+        self,
+        temperature: float | FloatArray,
+        pressure: float | FloatArray,
+        flows: FloatArray,
+    ) -> FloatArray:
+        """Return ln of the fugacity coefficients of a gas, shape (..., S); 0 outside it.
+
+        Arguments as of :meth:`compressibility`.
+        """
+        t, p, inside = self._rows(temperature, pressure, flows)
+        found = np.zeros((len(t), len(self.in_gas)))
+        state = self.equation.state(t, p, inside, of_gas=True)
+        found[:, self.in_gas] = state.ln_fugacity_coefficients
+        return found.reshape(flows.shape)
 
     def _rows(
         self, temperature: float | FloatArray, pressure: float | FloatArray, flows: FloatArray
@@ -153,12 +169,16 @@ class KnownGas:
     ) -> Iterator[Note]:
         """Remark on a gas in one or several states; arguments as of :meth:`compressibility`."""
         t, p, inside = self._rows(temperature, pressure, flows)
+        z = self.equation.compressibility_of_gas(t, p, inside)
         yield from remark_on_gas(
-            self.equation.compressibility_of_gas(t, p, inside),
+            z,
             would_condense(self.equation, t, p, inside),
             taken_as_ideal=taken_as_ideal,
             subject=subject,
         )
+        if not taken_as_ideal:
+            packing = self.equation.packing(t, p, inside, z)
+            yield from remark_on_packing(packing, np.asarray(p), subject)
 
 
 def gas_of(

@@ -7,12 +7,15 @@ from collections.abc import Iterator, Sequence
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray
-from core.errors import Note, Subject
+from core.errors import Amount, Note, Subject
 
 NEARLY_IDEAL = (0.95, 1.05)
 """Z between which a gas passes for ideal."""
 SAME_CONSTANT = 0.05
 """|ln| of what fugacity coefficients make of a constant, up to which it passes for the same."""
+CLOSE_PACKED = 0.5
+"""Share of the volume that is molecules, about twice that at the critical point, beyond which a
+cubic equation is not believed (common practice)."""
 _READ_AS_A_NUMBER = 100.0
 
 
@@ -51,6 +54,35 @@ def remark_on_gas(
             subject,
             {"count": int(condenses.sum()), "samples": len(condenses)},
         )
+
+
+def remark_on_packing(
+    packing: FloatArray, pressure: FloatArray, subject: Subject
+) -> Iterator[Note]:
+    """Remark on a gas denser than a cubic equation of state is believed for.
+
+    Parameters
+    ----------
+    packing, pressure : ndarray, shape (N,)
+        See :meth:`~core.real_gas.cubic.CubicEquation.packing`; Pa.
+    subject : Subject
+    """
+    dense = np.where(np.isfinite(packing), packing, 0.0)
+    if not len(dense) or dense.max() <= CLOSE_PACKED:
+        return
+    row = int(np.argmax(dense))
+    yield Note(
+        "gas-model-extrapolated",
+        "at {pressure} the gas is so dense that by the equation of state its molecules fill"
+        " {share} % of the volume, where a cubic equation, fitted to vapour pressures, is little"
+        " better than a guess. Check the pressure and its unit.",
+        "warning",
+        subject,
+        {
+            "pressure": Amount(float(pressure[row]), "pressure"),
+            "share": f"{100 * dense[row]:.0f}",
+        },
+    )
 
 
 def remark_on_constants(

@@ -168,35 +168,6 @@ ELECTRON_MOLAR_MASS = Fraction("5.4857990962e-4")
 """g/mol, CODATA 2022"""
 
 
-def atomic_weight(symbol: str, subject: Subject = ()) -> float:
-    """Molar mass of the atoms of one element.
-
-    Parameters
-    ----------
-    symbol : str
-        Of an element, or D or T.
-    subject : Subject
-        What a refusal is about.
-
-    Returns
-    -------
-    float
-        kg/mol.
-
-    Raises
-    ------
-    Refused
-        ``unknown-element``, or ``no-standard-atomic-weight`` of an element that
-        has none.
-
-    References
-    ----------
-    Prohaska et al. 2022 (see the module).
-    """
-    require_weight(symbol, subject)
-    return float(ATOMIC_WEIGHTS[symbol] / 1000)
-
-
 def require_weight(symbol: str, subject: Subject = ()) -> None:
     """Refuse a symbol for which :data:`ATOMIC_WEIGHTS` has no value."""
     if symbol in ATOMIC_WEIGHTS:

@@ -216,6 +216,29 @@ def _lines(name: str) -> list[str]:
     return text.splitlines()[1:]
 
 
+@dataclass(frozen=True)
+class Contradiction:
+    """A value that the caller states and the tables have far from it.
+
+    Attributes
+    ----------
+    what : str
+        ``enthalpy``, ``entropy``, ``gibbs`` or ``heat_capacity``.
+    stated, tabled : float
+        J/mol, or J/(mol K).
+    at : float
+        K, at which they were compared.
+    source : str
+        Of the tabled one, in words.
+    """
+
+    what: str
+    stated: float
+    tabled: float
+    at: float
+    source: str
+
+
 @dataclass(frozen=True, eq=False)
 class StandardProperties:
     """Thermochemical properties of one substance of an account, in its phase there.
@@ -241,6 +264,10 @@ class StandardProperties:
         Of ``enthalpy``, ``entropy`` and ``heat_capacity``, in words.
     spreads : Mapping[str, float]
         Largest difference from another collection: ``enthalpy``, J/mol; ``entropy``, J/(mol K).
+    contradictions : tuple of Contradiction
+        Of what is stated and what the tables have.
+    compared_with : str or None
+        The substance of the tables with which what is stated was compared, and its number.
     """
 
     substance: str
@@ -254,6 +281,8 @@ class StandardProperties:
     heat_capacity: HeatCapacity | None
     sources: Mapping[str, str]
     spreads: Mapping[str, float]
+    contradictions: tuple[Contradiction, ...] = ()
+    compared_with: str | None = None
 
 
 WANTED = ("enthalpy", "entropy", "heat_capacity")
@@ -321,7 +350,78 @@ def _looked_up(
         ]
         if missing:
             raise _missing(substance, phase, missing, subject, entry)
-    return _merged(substance, phase, stated, wanted, entry, found_by, tabled)
+    found = _merged(substance, phase, stated, wanted, entry, found_by, tabled)
+    return found if not any(has.values()) else _compared(found, substance, phase, stated, entry)
+
+
+FAR_OFF = {"enthalpy": (4e3, 0.02), "gibbs": (4e3, 0.02), "entropy": (4.0, 0.03)}
+"""J/mol or J/(mol K), and of the tabled value: beyond both, and three times what sources differ by,
+a stated value is another substance's, another phase's or in another unit (common practice)."""
+OTHER_HEAT_CAPACITY = 0.15
+"""Of the tabled heat capacity, at every temperature."""
+_COMPARED_AT = (298.15, 400.0, 500.0, 700.0, 1000.0, 1500.0)
+
+
+def _compared(
+    found: StandardProperties,
+    substance: Substance,
+    phase: Phase,
+    stated: StatedProperties,
+    entry: Entry | None,
+) -> StandardProperties:
+    """Return what was found with what in the tables contradicts what is stated of it."""
+    if entry is None:
+        entry = directory().find(substance, lambda one: phase in one.phase_cells).entry
+    tabled = None if entry is None else entry.phases.get(phase)
+    if entry is None or tabled is None:
+        return found
+    off = []
+    source = SOURCES[tabled.enthalpy_source]
+    gibbs = None
+    if tabled.entropy is not None:
+        formation = _of_formation(substance, tabled.entropy)
+        if formation is not None:
+            gibbs = tabled.enthalpy - REFERENCE_TEMPERATURE * formation
+    for what, own, theirs, spread, from_ in (
+        ("enthalpy", stated.enthalpy, tabled.enthalpy, tabled.enthalpy_spread, source),
+        ("gibbs", stated.gibbs, gibbs, tabled.enthalpy_spread, source),
+        (
+            "entropy",
+            stated.entropy,
+            tabled.entropy,
+            tabled.entropy_spread,
+            SOURCES.get(tabled.entropy_source, ""),
+        ),
+    ):
+        if own is None or theirs is None:
+            continue
+        least, share = FAR_OFF[what]
+        if abs(own - theirs) > max(least, share * abs(theirs), 3 * (spread or 0.0)):
+            off.append(Contradiction(what, own, theirs, REFERENCE_TEMPERATURE, from_))
+    of_heat = _heat_capacities_apart(stated.heat_capacity, tabled)
+    if of_heat is not None:
+        off.append(of_heat)
+    name = f"{entry.name} ({entry.registry_number}, {phase})"
+    return replace(found, contradictions=tuple(off), compared_with=name)
+
+
+def _heat_capacities_apart(own: HeatCapacity | None, tabled: TabledPhase) -> Contradiction | None:
+    """Return how a stated heat capacity is off, where it is so at every temperature."""
+    theirs = tabled.heat_capacity
+    if own is None or theirs is None:
+        return None
+    low, high = theirs.lowest, theirs.highest
+    if own.bounded:
+        low, high = max(low, own.lowest), min(high, own.highest)
+    each = [t for t in _COMPARED_AT if low <= t <= high]
+    if not each:
+        return None
+    ratio = [float(own.at(t)) / float(theirs.at(t)) - 1 for t in each]
+    if not (min(ratio) > OTHER_HEAT_CAPACITY or max(ratio) < -OTHER_HEAT_CAPACITY):
+        return None
+    t = each[0]
+    of = SOURCES[tabled.heat_capacity_source]
+    return Contradiction("heat_capacity", float(own.at(t)), float(theirs.at(t)), t, of)
 
 
 def _merged(
@@ -486,7 +586,18 @@ def _missing(
     """Return the refusal that says which fields would settle what is missing."""
     label, _ = split_state(substance.name)
     fields = " and ".join(f"'{_FIELDS[what]}'" for what in missing)
+    others: tuple[Entry, ...] = ()
     if entry is None:
+        # Perhaps it is only this phase of it that the tables do not have.
+        anyhow = directory().find(substance, lambda one: bool(one.phase_cells))
+        entry, others = anyhow.entry, anyhow.candidates
+    if others:
+        having = " and ".join(sorted({one for of in others for one in of.phase_cells}))
+        why = (
+            f"the packaged tables have {len(others)} substances of the composition of {label}, as"
+            f" {having} only, and none as a {phase}"
+        )
+    elif entry is None:
         said = substance.registry_number or substance.known_as
         what = f"the registry number or name {said}" if said else f"the name or formula of {label}"
         why = f"the packaged tables know no substance {'of' if said else 'by'} {what}"
@@ -494,7 +605,10 @@ def _missing(
             why += f" as a {phase}" if phase != "gas" else " as a gas"
     elif phase not in entry.phase_cells:
         having = " and ".join(sorted(entry.phase_cells))
-        why = f"the packaged tables have {entry.name} ({entry.registry_number}) as {having} only"
+        why = (
+            f"the packaged tables have {entry.name} ({entry.registry_number}) as {having} only, not"
+            f" as a {phase}"
+        )
     else:
         words = " and ".join(what.replace("_", " ") for what in missing)
         why = (

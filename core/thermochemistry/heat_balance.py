@@ -24,9 +24,7 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.errors import Amount, Fault, Refused, Subject, refuse
-from core.mole_account.extent_range import extent_limits
 from core.numerics.roots import find_root
-from core.reactions.reaction_set import ReactionSet
 from core.substances.heat_capacity import REFERENCE_TEMPERATURE, HeatCapacity
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.reaction_properties import EXTRAPOLATED, beyond_range
@@ -266,27 +264,6 @@ def adiabatic_temperature(
     if faults:
         raise Refused(faults)
     return found.reshape(lead)
-
-
-def complete_extents(reactions: ReactionSet, reaction: int, flows: FloatArray) -> FloatArray:
-    """Extents at which a reaction has used up its limiting reactant, the others standing still.
-
-    Parameters
-    ----------
-    reactions : ReactionSet
-    reaction : int
-    flows : ndarray, shape (..., S)
-        mol/s.
-
-    Returns
-    -------
-    ndarray, shape (..., R)
-    """
-    rows = flows.reshape(-1, flows.shape[-1])
-    extents = np.zeros((len(rows), len(reactions.nu)))
-    for k, row in enumerate(rows):
-        extents[k, reaction] = extent_limits(reactions.nu[reaction], row)[0]
-    return extents.reshape(*flows.shape[:-1], -1)
 
 
 def temperatures_known(properties: Sequence[StandardProperties]) -> tuple[float, float]:

@@ -177,7 +177,11 @@ class ReactionProperties:
                     {"spread": f"{spread:.2g}", "temperature": t},
                 )
             )
-        return (*found, *extrapolations(self.properties, np.asarray(temperature), subject))
+        return (
+            *found,
+            *contradictions(self.properties),
+            *extrapolations(self.properties, np.asarray(temperature), subject),
+        )
 
     def _pairs(self) -> list[tuple[float, StandardProperties]]:
         return list(zip(self.coefficients, self.properties, strict=True))
@@ -198,6 +202,46 @@ def _range_of(p: StandardProperties) -> dict[str, str | Amount]:
         "highest": Amount(cp.highest, "temperature"),
         "source": p.sources["heat_capacity"],
     }
+
+
+_FIELDS = {
+    "enthalpy": ("enthalpy of formation", "enthalpy_of_formation", "molar_energy"),
+    "gibbs": ("Gibbs energy of formation", "gibbs_of_formation", "molar_energy"),
+    "entropy": ("entropy", "entropy", "molar_heat_capacity"),
+    "heat_capacity": ("heat capacity", "heat_capacity", "molar_heat_capacity"),
+}
+
+
+def contradictions(properties: Sequence[StandardProperties]) -> tuple[Note, ...]:
+    """Return a warning for each value that is stated and that the packaged tables contradict."""
+    found = []
+    for p in properties:
+        for of in p.contradictions:
+            words, name, dimension = _FIELDS[of.what]
+            at = f"at {of.at:g} K"
+            sign = of.what in ("enthalpy", "gibbs") and abs(of.stated + of.tabled) < 0.05 * abs(
+                of.tabled
+            )
+            found.append(
+                Note(
+                    "stated-data-contradict-tables",
+                    f"the {words} stated of {{substance}} is {{stated}}, and the packaged tables"
+                    f" have {{tabled}} of {{compared}} {at} ({{source}}). What is stated was taken;"
+                    " check its "
+                    + ("sign" if sign else "sign, unit and phase")
+                    + ", or say by 'name' or 'registry_number' which other substance it is",
+                    "warning",
+                    ("species", p.substance, name),
+                    {
+                        "substance": p.substance,
+                        "stated": Amount(of.stated, dimension),
+                        "tabled": Amount(of.tabled, dimension),
+                        "compared": str(p.compared_with),
+                        "source": of.source,
+                    },
+                )
+            )
+    return tuple(found)
 
 
 def extrapolations(

@@ -522,10 +522,108 @@ case(
 )
 
 # -- reactors
+RATING = "rating"
+BED: dict[str, Any] = {
+    "reactions": [
+        {
+            "equation": "A -> R",
+            "rate": {
+                "per": "bed-volume",
+                "driving": "concentration",
+                "orders": {"A": 1},
+                "constant": "0.5 1/s",
+            },
+        }
+    ],
+    "species": {"A": {"molar_mass": "60 g/mol"}, "R": {"molar_mass": "60 g/mol"}},
+    "key": "A",
+    "feed": {
+        "phase": "gas",
+        "temperature": "500 K",
+        "pressure": "1.2 bar",
+        "flows": {"A": "5 mol/s"},
+    },
+    "reactor": {
+        "kind": "packed-bed",
+        "volume": "2 m3",
+        "cross_section": "0.05 m2",
+        "particle_diameter": "3 mm",
+        "void_fraction": 0.4,
+        "viscosity": "0.03 mPa s",
+        "pressure_drop": True,
+    },
+}
+
+
+def rating(**places: Any):
+    return RATING, changed(BED, **places)
+
+
+case("pressure-exhausted", rating(), "/reactor")
 case(
-    "one-reaction-only",
-    volume(reactions=[*SIZE["reactions"], {**SIZE["reactions"][0], "id": "again"}]),
+    "size-basis-needed",
+    rating(
+        reactions__0__rate__per="catalyst-mass",
+        reactions__0__rate__constant="0.5 m3/(kg s)",
+        reactor={"kind": "packed-bed", "volume": "2 m3"},
+    ),
+    "/reactions/0/rate/per",
+)
+case(
+    "rate-does-not-fade",
+    rating(
+        reactions=[
+            {
+                "id": name,
+                "equation": equation,
+                "rate": {
+                    "per": "bed-volume",
+                    "driving": "concentration",
+                    "orders": {},
+                    "constant": "8 mol/(m3 s)",
+                },
+            }
+            for name, equation in (("one", "A -> R"), ("two", "A -> 2 B"))
+        ],
+        species={
+            n: {"molar_mass": m}
+            for n, m in (("A", "60 g/mol"), ("R", "60 g/mol"), ("B", "30 g/mol"))
+        },
+        reactor={"kind": "plug-flow", "volume": "20 m3"},
+    ),
     "/reactions",
+)
+case(
+    "heat-capacity-of-liquid-unknown",
+    (
+        RATING,
+        {
+            **changed(SIZE, target=..., reactor={"kind": "plug-flow", "volume": "1 m3"}),
+            "feed": {
+                "phase": "liquid",
+                "temperature": "320 K",
+                "concentrations": {"A": "2 kmol/m3"},
+                "volumetric_flow": "10 m3/h",
+            },
+            "reactions": [
+                {
+                    **SIZE["reactions"][0],
+                    "enthalpy": {"heat": "-30 kJ/mol", "of": "A", "at": "320 K"},
+                },
+                {
+                    "id": "r2",
+                    "equation": "R -> B",
+                    "rate": SIZE["reactions"][0]["rate"] | {"orders": {"R": 1}},
+                    "enthalpy": {"heat": "-30 kJ/mol", "of": "R", "at": "320 K"},
+                },
+            ],
+            "species": {
+                n: {"molar_mass": "60 g/mol", "heat_capacity": "120 J/(mol K)"} for n in "ARB"
+            },
+            "thermal": {"mode": "adiabatic"},
+        },
+    ),
+    "/feed",
 )
 TRAIN = [{"id": "one", "kind": "plug-flow"}, {"id": "two", "kind": "plug-flow"}]
 case("train-sizes", volume(reactor={"kind": "train", "stages": TRAIN}), "/reactor/stages")
@@ -770,7 +868,7 @@ case(
     ),
     "/reactions",
 )
-case("mixture-vanishes", (EQUILIBRIUM, LIME), "/feed")
+case("mixture-vanishes", (EQUILIBRIUM, LIME | {"gas_model": "peng-robinson"}), "/feed")
 case(
     "equilibrium-not-found",
     equilibrium(
@@ -803,6 +901,9 @@ ELSEWHERE = {
     "expectation-failed": "tests/live/test_server.py",
     "extents-unbounded": "tests/core/mole_account/test_extent_range.py",
     "size-not-stated": "tests/schemas/reactors/test_reading.py",
+    "one-reaction-only": "tests/core/reactors/test_sizing_refusals.py",
+    "no-solution": "tests/core/reactors/test_marching.py",
+    "recycle-not-found": "tests/core/reactors/test_recycle.py",
     "cannot-be-free": "tests/schemas/reactors/test_reading.py",
     "not-converged": "tests/core/outlet_analysis/test_solving.py",
     "gas-not-converged": "tests/core/outlet_analysis/test_gases.py",

@@ -4,11 +4,10 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from core.equilibrium.constants import KnownConstants
 from core.equilibrium.equilibrium import solve_equilibrium
 from core.equilibrium.problem import EquilibriumProblem
 from core.real_gas.cubic import CubicEquation
-from tests.core.equilibrium.cases import mixture, problem, reaction_set
+from tests.core.equilibrium.cases import KnownConstants, mixture, problem, reaction_set
 
 ATM = 101325.0
 SHIFT = reaction_set(["CO + H2O <=> CO2 + H2"], ["N2"])

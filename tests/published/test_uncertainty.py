@@ -113,7 +113,7 @@ def test_gum_h2_resistance_reactance_and_impedance() -> None:
             [1 / i, -v / i**2, 0.0],
         ]
     )
-    linear = slopes @ found.covariance_of(maps) @ slopes.T
+    linear = slopes @ maps @ found.covariance @ maps.T @ slopes.T
     draws = monte_carlo(found, Sampling(100_000, 7))
     by_draws = np.cov(impedance(*(maps @ draws.z.T)))
     for covariance, of_u, of_r in ((linear, 6e-4, 6e-4), (by_draws, 2.5e-3, 5e-3)):

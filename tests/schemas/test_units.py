@@ -23,15 +23,12 @@ from schemas.unit_spellings import COMMON_UNITS, NAMES, TRAPS
 from schemas.units import (
     DEFAULT_UNITS,
     UnknownUnit,
-    difference_from_si,
     difference_to_si,
     difference_unit,
     find_unit,
-    from_si,
     is_difference_safe,
     nearest_units,
     spell,
-    spell_exponents,
     to_si,
 )
 
@@ -408,9 +405,7 @@ def test_gauge_counts_from_the_atmosphere_of_the_site():
     assert gauge.gauge
     assert to_si(2.0, gauge) == 301325.0
     assert to_si(2.0, gauge, atmospheric_pressure=90000.0) == 290000.0
-    assert from_si(290000.0, gauge, atmospheric_pressure=90000.0) == 2.0
     assert difference_to_si(2.0, gauge) == 200000.0
-    assert difference_from_si(200000.0, gauge) == 2.0
     for text in ("bar", "bara", "psia", "mmHg", "torr", "mmH2O", "atm", "kPa(a)"):
         assert not find_unit(text).gauge
 
@@ -419,7 +414,7 @@ def test_a_temperature_has_its_zero_and_a_difference_has_none():
     celsius, fahrenheit = find_unit("degC"), find_unit("degF")
     assert to_si(25.0, celsius) == 298.15
     assert_allclose(to_si(32.0, fahrenheit), 273.15, rtol=1e-15)
-    assert_allclose(from_si(373.15, fahrenheit), 212.0, rtol=1e-14)
+    assert_allclose(to_si(212.0, fahrenheit), 373.15, rtol=1e-14)
     assert difference_to_si(1.5, celsius) == 1.5
     assert_allclose(difference_to_si(18.0, fahrenheit), 10.0, rtol=1e-15)
     assert find_unit("W/(m2 degC)").offset == 0.0  # in a product the zero plays no part
@@ -452,20 +447,8 @@ def test_series_convert_as_single_values_do():
     for text in ("degF", "barg", "kmol/h"):
         unit = find_unit(text)
         assert_allclose(to_si(values, unit), [to_si(value, unit) for value in values.tolist()])
-        assert_allclose(from_si(to_si(values, unit), unit), values, rtol=1e-12)
-        assert_allclose(difference_from_si(difference_to_si(values, unit), unit), values)
-
-
-@given(
-    # Values within 1e-290 of zero lose digits in any arithmetic.
-    st.floats(1e-290, 1e15) | st.floats(-1e15, -1e-290) | st.just(0.0),
-    st.sampled_from(sorted(NAMES)),
-)
-def test_a_value_survives_the_way_to_si_and_back(value, text):
-    unit = find_unit(text)
-    shift = max(unit.offset, 101325.0 if unit.gauge else 0.0) / unit.factor
-    back = from_si(to_si(value, unit), unit)
-    assert abs(back - value) <= 4 * np.finfo(float).eps * (abs(value) + shift)
+        each = [difference_to_si(value, unit) for value in values.tolist()]
+        assert_allclose(difference_to_si(values, unit), each)
 
 
 # --- spelling and grammar --------------------------------------------------------------------
@@ -742,41 +725,3 @@ def test_a_unit_that_is_spelt_here_is_understood_here(parts):
     assert_allclose(unit.exponents, expected, atol=1e-12)
     product = math.prod(find_unit(name).factor ** power for name, power in parts)
     assert_allclose(unit.factor, product, rtol=1e-12)
-
-
-@pytest.mark.parametrize(
-    ("exponents", "like", "text"),
-    [
-        ((0, 3, -1, 0, -1), None, "m3/(mol s)"),
-        ((0, -1.5, -1, 0, 0.5), None, "mol^0.5/(m^1.5 s)"),
-        ((1, 2, -2, -1, -1), None, "J/(mol K)"),
-        ((1, 2, -2, 0, -1), None, "J/mol"),
-        ((1, 0, -3, -1, 0), None, "W/(m2 K)"),
-        ((1, -1, -1, 0, 0), None, "Pa s"),
-        ((1, -1, -2, 0, 0), None, "Pa"),
-        ((1, -3, 0, 0, 0), None, "kg/m3"),
-        ((-1, 0, -1, 0, 1), None, "mol/(kg s)"),
-        ((-0.5, 0.5, 1, 0, 0), None, "Pa^-0.5"),
-        ((0, 0, 0, 0, 0), None, "1"),
-        ((0, 0, -1, 0, 0), "kmol/(m3 h)", "1/h"),
-        ((0, 3, -1, 0, -1), "l/(mol min)", "l/(mol min)"),
-        ((0, 3, -1, 0, -1), "kmol/(m3 h bar)", "m3/(kmol h)"),
-        ((-0.5, 0.5, 1, 0, 0), "kmol/(m3 h bar)", "bar^-0.5"),
-        ((-0.5, 0.5, 1, 0, 0), "barg", "bar^-0.5"),
-        ((-1, 0, -1, 0, 1), "kmol/(kg_cat h bar)", "kmol/(kg_cat h)"),
-        ((-1, 0, -1, 0, 1), "bar", "mol/(kg s)"),
-        ((0, 0, 0, 1, 0), "degC", "K"),
-    ],
-)
-def test_a_dimension_is_spelt_in_the_callers_names(exponents, like, text):
-    assert spell_exponents(exponents, like) == text
-
-
-@given(
-    st.tuples(*[st.sampled_from([-1.5, -1, -0.5, 0, 0.5, 1, 2])] * 5),
-    st.sampled_from([None, "kmol/(m3 h bar)", "l/(mol min)", "kcal/mol", "degC", "psig"]),
-)
-def test_a_spelt_dimension_is_that_dimension(exponents, like):
-    text = spell_exponents(exponents, like)
-    assume(len(text) <= 40)
-    assert_allclose(find_unit(text).exponents, exponents, atol=1e-12)

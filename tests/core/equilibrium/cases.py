@@ -7,7 +7,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.equilibrium.constants import KnownConstants
 from core.equilibrium.problem import Equilibrium, EquilibriumProblem, Mixture
 from core.reactions.build import ReactionInput, build_reaction_set
 from core.reactions.reaction_set import ReactionSet
@@ -23,6 +22,16 @@ NETWORKS: tuple[tuple[str, ...], ...] = (
     ("SO2 + 1/2 O2 <=> SO3", "N2 + O2 <=> 2 NO", "NO + 1/2 O2 <=> NO2", "2 NO2 <=> N2O4"),
     ("C2H6 <=> C2H4 + H2", "C2H4 <=> C2H2 + H2", "2 C2H4 <=> C4H8", "C2H6 + H2 <=> 2 CH4"),
 )
+
+
+@dataclass(frozen=True, eq=False)
+class KnownConstants:
+    """ln K known for each sample, whatever its temperature; shape (N, R)."""
+
+    values: np.ndarray
+
+    def ln_k(self, temperature, rows):  # noqa: ARG002 - the protocol's signature
+        return self.values[rows]
 
 
 def reaction_set(equations: Sequence[str], others: Sequence[str] = ()) -> ReactionSet:

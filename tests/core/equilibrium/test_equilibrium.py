@@ -5,6 +5,7 @@ from hypothesis import strategies as st
 from numpy.testing import assert_allclose
 
 from core.constants import GAS_CONSTANT
+from core.equilibrium import newton
 from core.equilibrium.constants import StatedConstants
 from core.equilibrium.equilibrium import solve_equilibrium
 from core.equilibrium.problem import EquilibriumProblem
@@ -12,7 +13,7 @@ from core.equilibrium.reaction_space import reaction_space
 from core.errors import Refused
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
-from tests.core.equilibrium.cases import mixture, problem, reaction_set
+from tests.core.equilibrium.cases import KINDS, NETWORKS, draw, mixture, problem, reaction_set
 
 REFORMING = ["CH4 + H2O <=> CO + 3 H2", "CO + H2O <=> CO2 + H2"]
 FEED = {"CH4": 1.0, "H2O": 2.5, "CO2": 0.1, "H2": 0.2, "N2": 0.3}
@@ -244,3 +245,23 @@ def test_a_trace_too_small_for_a_reciprocal_has_an_extent():
     assert 0 < methane < 1e-308
     assert_allclose(found.extents[0, 0], -methane, rtol=1e-3)
     assert_allclose(found.extents[0, 1], amounts_by_name(reactions, found)["CO2"], rtol=1e-12)
+
+
+@pytest.mark.parametrize("network", range(len(NETWORKS)))
+def test_sets_of_minor_substances_are_those_of_an_elimination_of_each_sample(network):
+    """Looked up by the order of the amounts, and worked out anew: the same reactions form them."""
+    of = draw(np.random.default_rng(network), KINDS[0], network, 200)
+    nu = of.reactions.nu[:, of.reactions.nu.any(axis=0)]
+    ln_n = np.random.default_rng(1).uniform(-40, 0, (200, nu.shape[1]))
+    bases = newton._Bases(nu)
+    which = bases.of_order(np.argsort(ln_n, axis=1, kind="stable"))
+    minor, own, of_major, mix, major, changing = (part[which] for part in bases.chosen)
+    for row, weight in enumerate(ln_n):
+        each = [part[0] for part in newton._eliminated(nu, weight[None])]
+        a, b = np.argsort(minor[row]), np.argsort(each[0])
+        assert (minor[row][a] == each[0][b]).all()
+        for part, other in zip((own, of_major, mix), each[1:4], strict=True):
+            assert_allclose(part[row][a], other[b], atol=1e-12)
+        assert (major[row] == each[4]).all()
+        assert (changing[row] == each[5]).all()
+    assert len(bases.chosen[0]) < 70

@@ -75,6 +75,7 @@ def test_a_case_does_not_depend_on_its_company(width, monkeypatch):
     options = {"atol": 1e-13, "jacobian": f.jacobian, "autonomous": True}
     together = march_cases(f, x, f.start, **options)
     monkeypatch.setattr(batched, "_WIDTH", width)
+    monkeypatch.setattr(batched, "_STIFF_WIDTH", width)
     order = np.random.default_rng(1).permutation(40)
 
     def rearranged(at, y, case):

@@ -134,6 +134,22 @@ def test_outputs_end_where_the_march_ends():
     assert_allclose([back.end, *back.y[:, 1]], [-np.pi / 2, *np.sin(-back.x)], atol=1e-9)
 
 
+def test_outputs_just_before_an_event_among_several():
+    # So many that some lie between the step before the event and the event itself.
+    x = np.linspace(0, 2, 4001)
+    first = Event(lambda _x, y: y[0] - 0.3, 0, False)
+    found = march(turning, x, [1.0, 0.0], atol=ATOL, events=[first, Event(lambda _x, y: y[0])])
+    assert_allclose(found.x, x[x < np.pi / 2], rtol=0)
+    assert_allclose(found.y[:, 0], np.cos(found.x), atol=1e-9)
+    assert_allclose([c.x for c in found.crossings], [np.arccos(0.3), np.pi / 2], rtol=1e-10)
+
+
+def test_a_value_that_trembles_around_zero_is_bounded_work():
+    trembles = Event(lambda x, y: math.sin(3e4 * x) * y[0], 0, False)
+    fault = refused(turning, [0.0, 9.0], [1.0, 0.0], events=[trembles], most=20_000)
+    assert fault.code == "compute-budget"
+
+
 @given(st.floats(0.05, 20), st.floats(0.02, 0.98))
 @settings(max_examples=25, deadline=None)
 def test_a_level_is_met_where_the_closed_form_has_it(k, level):

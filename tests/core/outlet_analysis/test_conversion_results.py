@@ -475,7 +475,7 @@ def test_no_closure_with_opaque_substances() -> None:
 
 def test_covariance_of_the_flows_leaving() -> None:
     found, _ = answer(oxidation((4.0, 1.0)))
-    of_flows = found.covariance_of(found.account.outlet_map)
+    of_flows = found.account.outlet_map @ found.covariance @ found.account.outlet_map.T
     assert_allclose(np.sqrt(np.diag(of_flows)), found.u_of(found.account.outlet_map), rtol=1e-9)
     # The total takes the correlations of its parts with it.
     total = found.u_of(found.account.outlet_map.sum(axis=0)[None])[0]

@@ -11,7 +11,9 @@ from numpy.testing import assert_allclose
 from core.constants import GAS_CONSTANT
 from core.errors import Refused
 from core.outlet_analysis import gases
+from core.outlet_analysis.conversion import conversion_results
 from core.outlet_analysis.gases import estimate_of_gas
+from core.outlet_analysis.monte_carlo import Sampling, monte_carlo
 from core.outlet_analysis.readings import Series
 from core.outlet_analysis.reconciliation import estimate
 from core.real_gas.equation import gas_of
@@ -191,3 +193,60 @@ def test_dense_gases_by_their_concentrations():
     found = estimate_of_gas(account(reactions, "C2H4", feed, replace(outlet, real=True)), gas)
     left = found.outlet_flows / found.outlet_flows.sum()
     assert_allclose(left, amounts, rtol=1e-6)
+
+
+def dense(t=320.0, p=(100e5, 1e5), c=185.0):
+    """Ethylene and hydrogen in much carbon dioxide near its critical point, by volume."""
+    reactions = reactions_of({"r1": "C2H4 + H2 -> C2H6"}, ["CO2"])
+    fed = {"C2H4": (0.075, 0.001), "H2": (0.075, 0.001)}
+    feed = stream_of(
+        reactions,
+        "feed",
+        total=(1.0, 0.01),
+        analysis=analysis_of(reactions, "feed", fed, balance="CO2"),
+    )
+    left = {"C2H4": (c, 3.0)}
+    outlet = stream_of(
+        reactions,
+        "outlet",
+        analysis=analysis_of(reactions, "outlet", left, basis="concentration"),
+        temperature=(t, 0.5),
+        pressure=p,
+    )
+    gas = gas_of("peng-robinson", reactions, in_phase(reactions, "gas"), lambda n: ("species", n))
+    return account(reactions, "C2H4", feed, replace(outlet, real=True)), gas
+
+
+def test_uncertainties_count_that_z_moves_with_the_account():
+    """By central differences of the whole estimation, reading by reading."""
+    of, gas = dense()
+    found = estimate_of_gas(of, gas)
+    readings = found.account.readings
+    variance = np.zeros(len(found.z))
+    for k, subject in enumerate(readings.subjects):
+        u = float(readings.u[0, k])
+        sides = np.array([-0.2, 0.2]) * u + float(readings.measured[0, k])
+        series = {subject: Series(sides, np.full(2, u))}
+        moved = estimate_of_gas(replace(of, series=series), gas).z
+        variance += ((moved[1] - moved[0]) / 0.4) ** 2
+    assert_allclose(np.sqrt(np.diag(found.covariance)), np.sqrt(variance), rtol=5e-3, atol=1e-9)
+    fixed = estimate(found.account.problem)
+    key = found.account.outlet_map[of.key]
+    assert found.u_of(key[None]) > 1.3 * fixed.u_of(key[None])
+
+
+def test_draws_of_a_dense_gas_agree_with_its_covariance():
+    of, gas = dense()
+    found = estimate_of_gas(of, gas)
+    linear = conversion_results(found)
+    of_draws = conversion_results(found, draws=monte_carlo(found, Sampling(20_000, 3), gas))
+    assert_allclose(of_draws.conversion.u, linear.conversion.u, rtol=0.02 + 3 / 40_000**0.5)
+
+
+def test_draws_that_are_no_gas_are_left_out():
+    """A part of the draws has too high a pressure for a gas."""
+    of, gas = dense(298.0, (58e5, 8e5), 80.0)
+    found = estimate_of_gas(of, gas)
+    with pytest.raises(Refused) as refused:
+        monte_carlo(found, Sampling(1000, 3), gas)
+    assert refused.value.faults[0].code == "draws-without-account"

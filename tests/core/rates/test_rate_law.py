@@ -8,7 +8,13 @@ from core.errors import Refused
 from core.rates.constants import Arrhenius, Constant
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff, coefficient_sum
 from core.rates.power_product import PowerProduct
-from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
+from core.rates.rate_law import (
+    ByAffinity,
+    DenominatorFactor,
+    DenominatorTerm,
+    RateLaw,
+    ReverseConstant,
+)
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, vector
 
 R = 8.31446261815324
@@ -227,3 +233,76 @@ def test_needs_a_temperature_only_where_something_depends_on_it():
     ).needs_temperature
     hot = EquilibriumConstant("concentration", VantHoff(300.0, 1.0, 1e3))
     assert RateLaw(0, orders, constant, reverse=ByAffinity(hot)).needs_temperature
+
+
+def hindrance(law, concentrations=C):
+    """Return the denominator at concentrations."""
+    with np.errstate(divide="ignore"):
+        columns = np.log(np.append(concentrations, concentrations[[0, 1, 2, 4]].sum()))
+        found = [
+            factor.over(()).ln_value(
+                lambda j: columns[j].reshape(1, 1), lambda values: values[:, None]
+            )
+            for factor in law.hindrances(REACTIONS, 0, FEED)
+        ]
+    return float(np.exp(sum(found))[0, 0])
+
+
+def term(k, **orders):
+    return DenominatorTerm(Constant(k), vector(REACTIONS, orders))
+
+
+@pytest.mark.parametrize(
+    ("driving", "d"), [("concentration", C), ("partial-pressure", P), ("mole-fraction", Y)]
+)
+def test_denominator_by_its_definition(driving, d):
+    scale = 1 / d[0]
+    factors = (
+        DenominatorFactor(1.0, (term(0.3 * scale, A=1), term(2.0 * scale**0.5, R=0.5)), 2.0),
+        DenominatorFactor(0.0, (term(1.5, A=1, I=-1), term(0.2 * scale, B=1)), 0.7),
+    )
+    law = rate_law(REACTIONS, {"A": 1}, driving=driving, denominator=factors)
+    first = 1 + 0.3 * scale * d[0] + 2.0 * (scale * d[2]) ** 0.5
+    second = 1.5 * d[0] / d[4] + 0.2 * scale * d[1]
+    assert_allclose(hindrance(law), first**2 * second**0.7, rtol=1e-13)
+
+
+def test_a_floor_holds_in_the_denominator_too():
+    factors = (DenominatorFactor(1.0, (term(0.3, A=1, R=-1.5),)),)
+    law = rate_law(REACTIONS, {"A": 1}, denominator=factors, floors={"R": 2 * C[2]})
+    law.check(REACTIONS, 0, FEED)
+    assert_allclose(hindrance(law), 1 + 0.3 * C[0] * (2 * C[2]) ** -1.5, rtol=1e-13)
+    without = C.copy()
+    without[2] = 0.0
+    assert_allclose(hindrance(law, without), 1 + 0.3 * C[0] * (2 * C[2]) ** -1.5, rtol=1e-13)
+
+
+def test_constants_of_adsorption_follow_temperature():
+    constant = VantHoff(550.0, 0.8e-5, -45e3)
+    law = rate_law(
+        REACTIONS,
+        {"A": 1},
+        driving="partial-pressure",
+        denominator=(
+            DenominatorFactor(1.0, (DenominatorTerm(constant, vector(REACTIONS, {"A": 1})),)),
+        ),
+    )
+    k = 0.8e-5 * np.exp(45e3 / R * (1 / 600 - 1 / 550))
+    assert_allclose(hindrance(law), 1 + k * P[0], rtol=1e-13)
+    assert law.needs_temperature
+
+
+def test_denominators_that_make_no_sense():
+    outside = (DenominatorFactor(1.0, (term(1.0, S=1),)),)
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, denominator=outside))
+    where = (*RATE, "denominator", 0)
+    assert (fault.code, fault.subject) == (
+        "order-outside-phase",
+        (*where, "terms", 0, "orders", "S"),
+    )
+    for factor in (DenominatorFactor(-1.0, (term(1.0, A=1),)), DenominatorFactor(1.0, ())):
+        fault = refusal(rate_law(REACTIONS, {"A": 1}, denominator=(factor,)))
+        assert (fault.code, fault.subject) == ("impossible-value", (*where, "leading"))
+    factor = DenominatorFactor(1.0, (term(1.0, A=1),), 0.0)
+    fault = refusal(rate_law(REACTIONS, {"A": 1}, denominator=(factor,)))
+    assert fault.subject == (*where, "power")

@@ -300,3 +300,36 @@ def test_the_script_writes_the_packaged_tables(tmp_path):
     subprocess.run([sys.executable, "-W", "ignore", script, tmp_path], cwd=ROOT, check=True)
     for written in tmp_path.iterdir():
         assert written.read_bytes() == (ROOT / "core/substances" / written.name).read_bytes()
+
+
+def test_the_tables_do_not_contradict_themselves():
+    """A substance that states what the tables have of it; its enthalpy turned round is told."""
+    compared = 0
+    for entry in [e for e in ENTRIES if e.phase_cells][::7]:
+        phase, tabled = next(iter(entry.phases.items()))
+        if tabled.entropy is None or tabled.heat_capacity is None:
+            continue
+        for sign in (1.0, -1.0):
+            stated = StatedProperties(
+                enthalpy=sign * tabled.enthalpy,
+                entropy=tabled.entropy,
+                heat_capacity=tabled.heat_capacity,
+            )
+            number = entry.registry_number
+            found = of(entry.formula, phase, registry_number=number, stated=stated)
+            spread = 3 * (tabled.enthalpy_spread or 0.0)
+            far = sign < 0 and 2 * abs(tabled.enthalpy) > max(4e3, spread)
+            told = [one.what for one in found.contradictions]
+            assert told == (["enthalpy"] if far else [])
+            compared += 1
+    assert compared > 300
+
+
+def test_what_is_known_in_another_phase_only_says_so():
+    alone = directory().by_composition
+    entry = next(e for e in ENTRIES if set(e.phase_cells) == {"solid"} and len(alone[e.atoms]) == 1)
+    for more in ({}, {"registry_number": entry.registry_number}):
+        fault = fault_of(entry.formula, **more)
+        assert fault.code == "property-data-missing"
+        assert "as solid only, not as a gas" in str(fault.facts["why"])
+        assert entry.name in str(fault.facts["why"])
