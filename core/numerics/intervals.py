@@ -30,14 +30,17 @@ Bounds: TypeAlias = tuple[Any, Any]
 """Lower and upper, each an array of shape (m,) or a float."""
 
 _INF = np.inf
+_UNIT = float(np.finfo(float).eps)
+"""Times a number it is one unit of its last place, or nearly two."""
 _ULPS = 8 * float(np.finfo(float).eps)
 """Of elementary functions, which are not rounded correctly but within a few units."""
 _TINY = float(np.finfo(float).tiny)
 
 
 def outward(lower: Any, upper: Any) -> Bounds:
-    """Return bounds of results that are rounded correctly, one unit apart."""
-    return np.nextafter(lower, -_INF), np.nextafter(upper, _INF)
+    """Return bounds of results that are rounded correctly, moved by a unit or two."""
+    # Several times as fast as the next number itself.
+    return lower - (_UNIT * np.abs(lower) + _TINY), upper + (_UNIT * np.abs(upper) + _TINY)
 
 
 def _loosely(lower: Any, upper: Any) -> Bounds:
@@ -155,8 +158,8 @@ class Enclosure:
             return Enclosure(low, high, slope, _of_difference(self, other, low, high))
         # Shares of the sum that the first has; relative slopes are averaged by them.
         near, far = (self, other) if self.sign > 0 else (-self, -other)
-        least = np.nextafter(np.divide(near.lower, near.lower + far.upper), -_INF)
-        most = np.nextafter(np.divide(near.upper, near.upper + far.lower), _INF)
+        least = np.divide(near.lower, near.lower + far.upper) * (1.0 - 2 * _UNIT)
+        most = np.divide(near.upper, near.upper + far.lower) * (1.0 + 2 * _UNIT)
         a, b = self.relative, other.relative
         lower = np.minimum(b[0] + least * (a[0] - b[0]), b[0] + most * (a[0] - b[0]))
         upper = np.maximum(b[1] + least * (a[1] - b[1]), b[1] + most * (a[1] - b[1]))
