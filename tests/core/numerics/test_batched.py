@@ -6,7 +6,8 @@ from numpy.testing import assert_allclose
 from scipy.integrate import solve_ivp
 
 from core.numerics import batched
-from core.numerics.batched import CaseEvent, march_cases
+from core.numerics.batched import march_cases
+from core.numerics.case_events import CaseEvent
 from core.numerics.case_slopes import CaseParameters
 
 ATOL = 1e-13

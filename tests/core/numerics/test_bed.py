@@ -5,7 +5,8 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.integrate import solve_ivp
 
-from core.numerics.batched import CaseEvent, march_cases
+from core.numerics.batched import march_cases
+from core.numerics.case_events import CaseEvent
 from core.numerics.case_slopes import CaseParameters
 from core.numerics.integration import Event, march
 from tests.benchmark import _bed as bed
