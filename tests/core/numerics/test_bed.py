@@ -86,3 +86,19 @@ def test_a_conversion_is_met(kind):
         bed.on_floats(p[:, 0].tolist()), np.array([0.0, end]), inlets[:, 0], atol=1e-15, rtol=1e-11
     )
     assert_allclose(to_there.y_end[0], goal[0], rtol=1e-8)
+
+
+def test_sensitivities_from_copies_on_shared_steps():
+    # Central differences of copies that take the same steps, against those of runs of their own
+    # at a tolerance a thousand times as tight.
+    inlets, p = np.repeat(bed.INLET[:, None], 7, axis=1), np.repeat(bed.NOMINAL[:, None], 7, axis=1)
+    for copy, (table, row) in enumerate([(p, 0), (p, 5), (inlets, 8)]):
+        table[row, 2 * copy + 1] *= 1.001
+        table[row, 2 * copy + 2] *= 0.999
+    found = all_at_once(inlets, p, rtol=1e-7, together=True)
+    assert len(set(found.evaluations.tolist())) == 1
+    alone = [one(inlets[:, i], p[:, i], rtol=1e-11).y_end for i in range(1, 7)]
+    for copy in range(3):
+        slope = found.y_end[:, 2 * copy + 1] - found.y_end[:, 2 * copy + 2]
+        exact = alone[2 * copy] - alone[2 * copy + 1]
+        assert_allclose(slope, exact, rtol=1e-5, atol=1e-6 * np.abs(exact).max())
