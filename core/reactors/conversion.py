@@ -43,6 +43,7 @@ _RESOLVED = 1e-12  # last coefficients of a series over its mean
 _COARSE = 1e-9  # the same, where halving no longer helps because the rate itself is no better
 _MOST_HALVINGS = 60
 _MOST_PANELS = 2000
+_MOST_PANELS_ADIABATIC = 40  # each finds temperatures; beside equilibrium none of them is smooth
 _BLOCK = 1024  # panels evaluated in one call
 _SHALLOW = 0.05  # share of a first panel below which its root is sought in a smaller one
 _AT_ONCE: FloatArray = np.array(
@@ -306,7 +307,8 @@ class _March:
         width = np.where((guess > 0) & (guess < _WIDEST), guess, _WIDEST)
         start, done = np.zeros(len(case)), np.zeros(len(case))
         halved: IndexArray = np.zeros(len(case), dtype=np.intp)
-        for _ in range(_MOST_PANELS):
+        adiabatic = self.path.adiabat is not None
+        for _ in range(_MOST_PANELS_ADIABATIC if adiabatic else _MOST_PANELS):
             width = np.minimum(width, self._room(case, start))
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 panels = self._panels(case, start, width)
