@@ -79,7 +79,13 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
     if isinstance(reactor, RecyclePlugFlow):
         return recycle.around(problem, basis, before, work, size=size)
     if along_path.has_path(problem):
-        return _observed(along_path.rated(problem, basis, size), before)
+        try:
+            return _observed(along_path.rated(problem, basis, size), before)
+        except Refused as refused:
+            # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
+            # the integrand is too rough for its panels; a march goes on.
+            if refused.faults[0].code != "integral-not-converged":
+                raise
     return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
 
 
