@@ -951,9 +951,10 @@ def _check_reach(
     left = path.target_left
     if not open_end:
         beyond = (left < 0) | (path.target_gone < 0) | (path.limit == 0) & (path.target != 0)
-        beyond_range = path.at_range & beyond & (path.target * path.limit > 0)
-        if beyond_range.any():
-            assert path.adiabat is not None
+        if path.adiabat is not None and (path.at_range & beyond).any():
+            beyond_range = path.at_range & beyond & (path.target * path.limit > 0)
+            if not beyond_range.any():
+                raise out_of_reach(reactions, path, beyond)
             i = int(np.flatnonzero(beyond_range)[0])
             subject = target_subject(i, path.lead)
             raise path.adiabat.out_of_reach(i, float(path.target[i]), subject)
@@ -1000,7 +1001,7 @@ def check_end(
             s = orders.shape[1]
             absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & ends
             law.check_absences(reactions, 0, absent, orders, place)
-    if ((account.end[:, -2:] == 0) & ends).any():
+    if complete.any() and ((account.end[:, -2:] == 0) & ends).any():
         raise refuse(
             "phase-vanishes",
             ("target", "conversion"),
