@@ -1846,7 +1846,10 @@ class Maker:
             rate["per"] = rnd.choice(["bed-volume", "catalyst-mass"])
             if rate["per"] == "catalyst-mass" and isinstance(rate["constant"], str):
                 # Of a rate per 1 m3; wrong now and then.
-                rate["constant"] += rnd.choice([" m3/kg", " m3 kg^-1", ""])
+                number, _, of_volume = rate["constant"].partition(" ")
+                rate["constant"] = (
+                    f"{number} {rnd.choice(['m3 kg^-1', 'm3 kg^-1', ''])} {of_volume}"
+                )
 
         def factor() -> Json:
             terms = []
