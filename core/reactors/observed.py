@@ -89,11 +89,12 @@ class Observer:
         y : ndarray, shape (n, size of the layout)
         """
         balances, layout, n = self.balances, self.balances.layout, len(x)
+        flows = self._not_below_zero(y[:, : layout.substances])
+        y = np.concatenate([flows, y[:, layout.substances :]], axis=1)
         found = self._everything.on_arrays()(x, y.T)
         spread = [np.broadcast_to(np.asarray(v, dtype=float), n) for v in found]
         volume, z, held = spread[:3]
         feed = balances.feed
-        flows = self._not_below_zero(y[:, : layout.substances])
         start = State(balances, list(y[0]))
         t = y[:, layout.temperature] if layout.temperature is not None else start.temperature
         if feed.phase != "gas":
