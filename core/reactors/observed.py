@@ -177,7 +177,9 @@ class Observer:
             liquid_volumetric_flow=liquid,
         )
 
-    def gap(self, target: Target, balances: Balances | None = None) -> StraightLine:
+    def gap(
+        self, target: Target, balances: Balances | None = None, besides: int = 0
+    ) -> StraightLine:
         """Return what is zero where a target is met: of (x, state).
 
         Parameters
@@ -185,6 +187,8 @@ class Observer:
         target : Target
         balances : Balances, optional
             Of a batch that is being fed, or has been.
+        besides : int
+            Numbers behind the state.
 
         Raises
         ------
@@ -192,7 +196,7 @@ class Observer:
             ``target-not-defined``: the quantity is not known here.
         """
         which = self.balances if balances is None else balances
-        return which.recorded(lambda state: [self._gap(target, state)])
+        return which.recorded(lambda state: [self._gap(target, state)], besides)
 
     def _gap(self, target: Target, state: State) -> Number:
         problem, feed = self._problem, self.balances.feed
