@@ -8,7 +8,6 @@ from __future__ import annotations
 
 import json
 import warnings
-from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cache
 from importlib.resources import files
@@ -155,8 +154,8 @@ def operation(name: str) -> Operation:
     return next(op for op in OPERATIONS if op.name == name)
 
 
-def openapi_document(operations: Sequence[Operation] = OPERATIONS) -> Json:
-    """Return the OpenAPI document of operations made from the schemas as they are now."""
+def openapi_document() -> Json:
+    """Return the OpenAPI document made from the schemas as they are now."""
     # Only here: serving the packaged document needs none of it.
     from apispec import APISpec
     from apispec.ext.marshmallow import MarshmallowPlugin
@@ -186,7 +185,7 @@ def openapi_document(operations: Sequence[Operation] = OPERATIONS) -> Json:
     with warnings.catch_warnings():
         # One component under two modifiers would be a fault of ours, and a test compares them.
         warnings.simplefilter("error")
-        for op in operations:
+        for op in OPERATIONS:
             spec.path(path=op.path, operations={op.method.lower(): _described(op)})
     document: Json = spec.to_dict()
     limit = document["components"]["schemas"]["Limit"]

@@ -1829,7 +1829,60 @@ class Maker:
             }[which]
             target = {"species": rnd.choice(list(nu) if self.chance(0.8) else names), which: value}
         made["target"] = target
+        self.hinder(made, names)
         return made, None
+
+    def hinder(self, made: Json, names: list[str]) -> None:
+        """Give the rate a denominator, another basis or a pellet now and then, units mostly right.
+
+        By chances of its own, so that the other requests of a seed stay what they are.
+        """
+        rnd = random.Random(json.dumps(made, sort_keys=True))
+        rate = made["reactions"][0]["rate"]
+        unit = {"concentration": "mol/m3", "partial-pressure": "bar", "mole-fraction": "1"}[
+            rate["driving"]
+        ]
+        if rnd.random() < 0.2:
+            rate["per"] = rnd.choice(["bed-volume", "catalyst-mass"])
+            if rate["per"] == "catalyst-mass" and isinstance(rate["constant"], str):
+                # Of a rate per 1 m3; wrong now and then.
+                number, _, of_volume = rate["constant"].partition(" ")
+                rate["constant"] = (
+                    f"{number} {rnd.choice(['m3 kg^-1', 'm3 kg^-1', ''])} {of_volume}"
+                )
+
+        def factor() -> Json:
+            terms = []
+            for _ in range(rnd.choice([1, 2, 3])):
+                order = rnd.choice([1, 0.5, 2, -1, 0])
+                constant: Any = f"{10 ** rnd.uniform(-6, 6):.4g} ({unit})^{_fraction(-order)}"
+                if order == 0 or unit == "1":
+                    constant = rnd.choice([2.5, 1e-9, 1e9])
+                if rnd.random() < 0.4:
+                    energy = rnd.choice(["adsorption_enthalpy", "activation_energy"])
+                    constant = {"at": "500 K", "constant": constant, energy: "-40 kJ/mol"}
+                terms.append({"constant": constant, "orders": {rnd.choice(names): order}})
+            made: Json = {"terms": terms}
+            if rnd.random() < 0.5:
+                made |= {"leading": rnd.choice([0, 1, 1e6]), "power": rnd.choice([1, 2, 0.3, 10])}
+            return made
+
+        if rnd.random() < 0.3:
+            rate["denominator"] = rnd.choice([factor(), [factor(), factor()]])
+        elif rnd.random() < 0.1:
+            rate["effectiveness"] = {
+                "geometry": rnd.choice(["sphere", "cylinder", "slab"]),
+                "size": rnd.choice(["2 mm", "1e-9 m", "1e6 m"]),
+                "diffusivity": rnd.choice(["1e-9 m2/s", "1e-30 m2/s", "1e30 cm2/s"]),
+                **rnd.choice(
+                    [
+                        {},
+                        {"void_fraction": 0.4},
+                        {"void_fraction": 1},
+                        {"particle_density": "1 t/m3"},
+                    ]
+                ),
+            }
 
     # -- documents made from the schema alone
 

@@ -58,15 +58,15 @@ def contract() -> dict[str, Any]:
     return openapi_document()
 
 
-def closed(node: Any, *, named: bool = False) -> Any:
+def _closed(node: Any, *, named: bool = False) -> Any:
     """Close every object of an answer that the published schema leaves open."""
     if isinstance(node, dict):
-        done = {k: closed(v, named=k in ("properties", "schemas")) for k, v in node.items()}
+        done = {k: _closed(v, named=k in ("properties", "schemas")) for k, v in node.items()}
         is_object = node.get("type") == "object" and "properties" in node
         if not named and is_object and node.get("additionalProperties", True) is True:
             done["additionalProperties"] = False
         return done
-    return [closed(v) for v in node] if isinstance(node, list) else node
+    return [_closed(v) for v in node] if isinstance(node, list) else node
 
 
 @cache
@@ -77,7 +77,7 @@ def answer_validator(operation: str, status: int) -> Draft202012Validator:
     responses = document["paths"][op.path][op.method.lower()]["responses"]
     content = responses[str(status)]["content"]
     media = "application/json" if status == 200 else "application/problem+json"
-    components = closed(document["components"])
+    components = _closed(document["components"])
     return Draft202012Validator({**content[media]["schema"], "components": components})
 
 

@@ -18,13 +18,14 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from typing import Any, TypeAlias
+from typing import Any
 
 import numpy as np
 
 from core.arrays import BoolArray, FloatArray, IntArray
 from core.errors import Amount, Fault, Subject
 from core.numerics import explicit_step, rosenbrock_step
+from core.numerics.case_events import SHARES, CaseEvent, Look
 from core.numerics.case_slopes import (
     CaseFunction,
     CaseJacobian,
@@ -34,10 +35,6 @@ from core.numerics.case_slopes import (
     Tolerance,
     mean_square,
 )
-from core.numerics.roots import find_root
-
-CaseValue: TypeAlias = Callable[[FloatArray, Sequence[FloatArray], IntArray], FloatArray]
-"""``g(x, y, case)``, as :data:`~core.numerics.case_slopes.CaseFunction`, to shape (A,)."""
 
 MOST_EVALUATIONS = 100_000
 """Of the right-hand side, for one case."""
@@ -48,28 +45,10 @@ _SAFETY, _LEAST_FACTOR, _MOST_FACTOR = 0.9, 0.2, 6.0
 _NOT_FINITE_FACTOR = 0.25
 _SIGNS_OF_STIFFNESS, _SIGNS_AGAINST = 10, 6  # steps; DOP853 waits for 15
 _WORTH_IT = 200  # explicit steps to the end, below which they are the quicker way, stiff or not
-_EPS, _TINY = float(np.finfo(float).eps), float(np.finfo(float).tiny)
+_EPS = float(np.finfo(float).eps)
 _LEAST_STEP = 16 * _EPS  # of where a case stands
 _LEAST_OF_ALL = 1e-60  # of the way: a start at zero may need steps far below rounding of the way
-_WITHIN: FloatArray = np.array([0.25, 0.5, 0.75])
-_ZOOMS, _ZOOM = 6, 9
-_DEEP = 0.6  # of what a value sinks to at the least looked at: beyond, it is looked at closely
 _CORRECTIONS = 4
-
-
-@dataclass(frozen=True, eq=False)
-class CaseEvent:
-    """Where a value changes sign, a march ends.
-
-    Attributes
-    ----------
-    value : CaseValue
-    direction : int
-        1 for where it rises through zero, -1 for where it falls, 0 for either.
-    """
-
-    value: CaseValue
-    direction: int = 0
 
 
 @dataclass(frozen=True, eq=False)
@@ -480,7 +459,7 @@ class _Room:
         everyone = np.arange(len(good))
         inside = [
             (share, lanes.x + share * h, within(np.full(len(good), share), everyone))
-            for share in _WITHIN
+            for share in SHARES[1:-1]
         ]
         share, event = np.full(len(good), np.inf), np.full(len(good), -1)
         rising = np.zeros(len(good), dtype=np.intp)
@@ -491,7 +470,12 @@ class _Room:
                 *(self._value(e, x, y, lanes.case) for _, x, y in inside),
                 self._value(e, x_new, step.y, lanes.case),
             ]
-            look = _Look(self, e, lanes, within, h, np.array(samples))
+
+            def at_share(share: FloatArray, some: IntArray, e: int = e) -> FloatArray:
+                x = lanes.x[some] + share * h[some]
+                return self._value(e, x, within(share, some), lanes.case[some])
+
+            look = Look(at_share, self.events[e].direction, np.array(samples), lanes.side[e])
             found = look.crossings(good)
             roots = look.roots(found)
             first = roots < share[found.lanes]
@@ -541,118 +525,6 @@ class _Room:
                 break
             share = moved
         return x + share * width, np.where(share == 0, y, states)
-
-
-@dataclass(eq=False)
-class _Brackets:
-    """Between which shares of a step a value leaves a side, of some cases."""
-
-    lanes: IntArray
-    side: IntArray
-    lower: FloatArray
-    upper: FloatArray
-
-
-@dataclass(eq=False)
-class _Look:
-    """One event within one step: its value at five places, and closer where it must be.
-
-    Attributes
-    ----------
-    samples : ndarray, shape (5, A)
-    side_at_end : ndarray of int, shape (A,)
-        Sign that the value has come to.
-    """
-
-    room: _Room
-    event: int
-    lanes: _Lanes
-    within: Interpolant
-    h: FloatArray
-    samples: FloatArray
-    side_at_end: IntArray = field(init=False)
-
-    def _at(self, share: FloatArray, lanes: IntArray) -> FloatArray:
-        x = self.lanes.x[lanes] + share * self.h[lanes]
-        return self.room._value(self.event, x, self.within(share, lanes), self.lanes.case[lanes])
-
-    def crossings(self, good: BoolArray) -> _Brackets:
-        """Return the first change of sign in the direction asked for."""
-        direction = self.room.events[self.event].direction
-        shares = np.array([0.0, *_WITHIN, 1.0])
-        side = self.lanes.side[self.event].copy()
-        began = side.copy()
-        left = side.copy()
-        lower, upper = np.zeros((2, len(good)))
-        fired = np.zeros(len(good), dtype=bool)
-        for i in range(1, len(shares)):
-            sign = np.nan_to_num(np.sign(self.samples[i])).astype(np.intp)
-            known = np.isfinite(self.samples[i])
-            crossed = known & (side != 0) & (sign != side) & good & ~fired
-            if direction:
-                crossed &= side == -direction
-            lower[crossed], upper[crossed] = shares[i - 1], shares[i]
-            left[crossed] = side[crossed]
-            fired |= crossed
-            side = np.where(sign != 0, sign, side)
-        self.side_at_end = side
-        began = np.where(began == 0, side, began)
-        level = good & ~fired & (np.sign(self.samples[1:]) == began).all(axis=0) & (began != 0)
-        if direction:
-            level &= began == -direction
-        closer = self._dips(np.flatnonzero(level), began)
-        lanes = np.flatnonzero(fired)
-        return _Brackets(
-            np.concatenate([lanes, closer.lanes]),
-            np.concatenate([left[lanes], closer.side]),
-            np.concatenate([lower[lanes], closer.lower]),
-            np.concatenate([upper[lanes], closer.upper]),
-        )
-
-    def _dips(self, lanes: IntArray, side: IntArray) -> _Brackets:
-        """Return where a value that has the same sign at all places dips to the other side."""
-        size = self.samples[:, lanes] * side[lanes]
-        middle = np.clip(np.argmin(size, axis=0), 1, len(size) - 2)
-        along = np.arange(len(lanes))
-        before, there, after = (size[middle + i, along] for i in (-1, 0, 1))
-        bend = before - 2.0 * there + after
-        offset = 0.5 * (before - after) / bend
-        bottom = there - 0.25 * (before - after) * offset
-        deep = (bend > 0) & (np.abs(offset) <= 1) & (bottom < _DEEP * size.min(axis=0))
-        lanes, middle = lanes[deep], middle[deep]
-        lower, upper = 0.25 * (middle - 1.0), 0.25 * (middle + 1.0)
-        left, right = lower.copy(), upper.copy()
-        fired = np.zeros(len(lanes), dtype=bool)
-        for _ in range(_ZOOMS):
-            open_ = np.flatnonzero(~fired)
-            if not len(open_):
-                break
-            share = np.linspace(left[open_], right[open_], _ZOOM)
-            values = np.array([self._at(row, lanes[open_]) for row in share])
-            values *= side[lanes[open_]]
-            least = np.argmin(values, axis=0)
-            where = np.arange(len(open_))
-            left[open_] = share[np.maximum(least - 1, 0), where]
-            right[open_] = share[np.minimum(least + 1, _ZOOM - 1), where]
-            below = values[least, where] <= 0
-            upper[open_[below]] = share[least, where][below]
-            lower[open_[below]] = share[0][below]
-            fired[open_] = below
-        return _Brackets(lanes[fired], side[lanes[fired]], lower[fired], upper[fired])
-
-    def roots(self, found: _Brackets) -> FloatArray:
-        """Return the share of the step at which each crosses."""
-        if not len(found.lanes):
-            return np.zeros(0)
-
-        def value(share: FloatArray, i: IntArray) -> FloatArray:
-            out = self._at(share, found.lanes[i]) * found.side[i]
-            out = np.where(np.isfinite(out), out, -1.0)
-            # The ends are known: rounding does not put them on the other side.
-            out = np.where(share <= found.lower[i], np.maximum(out, _TINY), out)
-            return np.where(share >= found.upper[i], np.minimum(out, 0.0), out)
-
-        return find_root(value, found.lower, found.upper, subject=self.room.subject)
 
 
 def _first_step(

@@ -22,7 +22,8 @@ from scipy.integrate import ODEintWarning, odeint
 from core.arrays import FloatArray, IntArray
 from core.errors import Refused, Subject
 from core.numerics import explicit_step
-from core.numerics.batched import CaseEvent, march_cases, unfinished
+from core.numerics.batched import march_cases, unfinished
+from core.numerics.case_events import CaseEvent
 from core.numerics.case_slopes import CaseFunction, Slopes, Tolerance
 
 Function: TypeAlias = Callable[[float, list[float]], Sequence[float]]

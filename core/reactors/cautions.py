@@ -26,9 +26,13 @@ def cautions(problem: ReactorProblem, reacted: Reacted) -> Iterator[Note]:
             ("temperature_limit",),
             {"hottest": Amount(hottest, "temperature"), "limit": Amount(limit, "temperature")},
         )
-    yield from _of_states(reacted.steady_states)
-    for stage in reacted.stages:
-        yield from _of_states(stage.steady_states, f" of {stage.id}")
+    tanks = [("", reacted.steady_states)] if reacted.steady_states is not None else []
+    tanks += [(s.id, s.steady_states) for s in reacted.stages if s.steady_states is not None]
+    for id_, found in tanks:
+        yield from _several(found, id_)
+    unproven = [id_ for id_, found in tanks if not found.complete]
+    if unproven:
+        yield _unproven(unproven)
     if reacted.accumulation is not None:
         yield _accumulated(problem.reactions, reacted.accumulation, limit)
 
@@ -48,33 +52,40 @@ def _most(profile: ReactorProfile) -> float:
     return float("-inf") if profile.temperature is None else float(profile.temperature.max())
 
 
-def _of_states(found: SteadyStates | None, where: str = "") -> Iterator[Note]:
-    if found is None:
+def _several(found: SteadyStates, id_: str) -> Iterator[Note]:
+    if len(found.states) < 2:
         return
-    if len(found.states) > 1:
-        each = [s.outlet.temperature for s in found.states]
-        facts: dict[str, Fact] = {
-            f"at_{k}": Amount(float(t), "temperature") for k, t in enumerate(each) if t is not None
-        }
-        temperatures = ", ".join(f"{{at_{k}}}" for k, t in enumerate(each) if t is not None)
-        at = f" at {temperatures}" if temperatures else ""
-        yield Note(
-            "several-steady-states",
-            f"the tank{where} has {len(found.states)} steady states{at}: which of them it comes to"
-            " hangs on how it is started, and a disturbance can take it from one to another."
-            + _NOT_ASSESSED,
-            "caution",
-            ("reactor",),
-            facts,
-        )
-    if not found.complete:
-        yield Note(
-            "search-not-proven",
-            f"the steady states{where} are those that a search found; that there are no others is"
-            " not proven",
-            "info",
-            ("reactor",),
-        )
+    each = [s.outlet.temperature for s in found.states]
+    facts: dict[str, Fact] = {
+        f"at_{k}": Amount(float(t), "temperature") for k, t in enumerate(each) if t is not None
+    }
+    at = ""
+    if facts:
+        at = " at " + ", ".join(f"{{{name}}}" for name in facts)
+    where = f" {{tank}} has {len(each)}" if id_ else f" has {len(each)}"
+    if id_:
+        facts["tank"] = id_
+    yield Note(
+        "several-steady-states",
+        f"the tank{where} steady states{at}: which of them it comes to hangs on how it is started,"
+        " and a disturbance can take it from one to another." + _NOT_ASSESSED,
+        "caution",
+        ("reactor",),
+        facts,
+    )
+
+
+def _unproven(ids: list[str]) -> Note:
+    named = ", ".join(id_ for id_ in ids if id_)
+    return Note(
+        "search-not-proven",
+        "the steady states"
+        + (" of the tanks {tanks}" if named else "")
+        + " are those that a search found; that there are no others is not proven",
+        "info",
+        ("reactor",),
+        {"tanks": named} if named else {},
+    )
 
 
 def _accumulated(reactions: ReactionSet, most: Accumulation, limit: float | None) -> Note:

@@ -46,6 +46,7 @@ _COARSE = 1e-9  # the same, where halving no longer helps because the rate itsel
 _NOTHING = 1e-18  # of the size so far: a panel that adds no more is passed as it is
 _MOST_HALVINGS = 60
 _MOST_PANELS = 2000
+_MOST_PANELS_ADIABATIC = 40  # each finds temperatures; beside equilibrium none of them is smooth
 _BLOCK = 1024  # panels evaluated in one call
 _SHALLOW = 0.05  # share of a first panel below which its root is sought in a smaller one
 _AT_ONCE: FloatArray = np.array(
@@ -330,7 +331,8 @@ class _March:
         width = np.where((guess > 0) & (guess < _WIDEST), guess, _WIDEST)
         start, done = np.zeros(len(case)), np.zeros(len(case))
         halved: IndexArray = np.zeros(len(case), dtype=np.intp)
-        for _ in range(_MOST_PANELS):
+        adiabatic = self.path.adiabat is not None
+        for _ in range(_MOST_PANELS_ADIABATIC if adiabatic else _MOST_PANELS):
             width = np.minimum(width, self._room(case, start))
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 panels = self._panels(case, start, width)

@@ -161,15 +161,15 @@ class Observer:
         return result
 
     def stream(self, seen: Seen, at: int = -1) -> Stream:
-        """Return the stream, or what stands in a batch, at one of the states."""
+        """Return what leaves, or stands in a batch, at one of the states."""
         feed = self.balances.feed
         t, p = seen.temperature, seen.pressure
         liquid = feed.liquid_volumetric_flow
         if liquid is not None and seen.volume is not None:
-            liquid = float(seen.volume[at])
+            liquid = float(seen.volume[at]) * self.leaving
         return replace(
             feed,
-            flows=seen.flows[at],
+            flows=seen.flows[at] * self.leaving,
             temperature=None if t is None else float(t[at]),
             pressure=None if p is None else float(p[at]),
             compressibility=float(seen.compressibility[at]),

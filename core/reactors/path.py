@@ -21,10 +21,8 @@ where a feed lies beyond equilibrium.
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 from copy import copy
-from dataclasses import dataclass, field, replace
-from enum import Enum
+from dataclasses import field, replace
 from functools import cached_property
 
 import numpy as np
@@ -32,25 +30,20 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray
 from core.errors import Amount, Fact, Fault, Refused, Subject, refuse
 from core.numerics.quadrature import IndexArray
-from core.numerics.roots import find_one_root, find_root
 from core.rates.pellet import Per
 from core.rates.power_product import FlooredFactor, PowerProduct, Rows, Warmth, spread
 from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.adiabat import Adiabat, adiabat
+from core.reactors.amounts import Account, Trend, rows_of
+from core.reactors.limit import Imbalance, direction, equilibrium, reach, to_end
 from core.reactors.single_case import SingleCase
 from core.records import record
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats
 
 _EPS = float(np.finfo(float).eps)
-_FAR = 690.0  # logit beyond which the rest of the way is no normal number
-# Logits between which one equilibrium is bracketed, and those that a scan looks at where there
-# may be several.
-_ONE: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 17))
-_SCAN: FloatArray = np.sinh(np.linspace(-np.arcsinh(_FAR), np.arcsinh(_FAR), 257))
 _ALMOST = -600.0  # ln of what is left where a limit is looked for
-_SCAN_BLOCK = 500  # cases scanned at a time
 
 
 @record(eq=False)
@@ -77,67 +70,6 @@ class Place:
     def at(cls, case: IndexArray, u: FloatArray) -> Place:
         """Return the place at u = -ln(1 - X/X_limit), shape (m, q)."""
         return cls(case, np.exp(-u), -np.expm1(-u), -u)
-
-
-class Trend(Enum):
-    """How a column goes along the way; mixed where it depends on the case."""
-
-    STILL = "still"
-    FALLS = "falls"
-    RISES = "rises"
-    MIXED = "mixed"
-
-
-@record(eq=False)
-class Account:
-    """Amounts at both ends of the way and their changes along it, N cases.
-
-    Of S + 2 columns: the substances, the total in the phase, the volume over
-    that of the feed. Each ndarray of shape (N, S + 2), per amount of key fed.
-    """
-
-    start: FloatArray
-    change: FloatArray
-    end: FloatArray
-
-    @cached_property
-    def trends(self) -> list[Trend]:
-        """The trend of each column."""
-        least, most = self.change.min(axis=0).tolist(), self.change.max(axis=0).tolist()
-        kinds = []
-        for low, high in zip(least, most, strict=True):
-            if low == high == 0:
-                kinds.append(Trend.STILL)
-            elif high < 0:
-                kinds.append(Trend.FALLS)
-            else:
-                kinds.append(Trend.MIXED if low < 0 else Trend.RISES)
-        return kinds
-
-    @cached_property
-    def vanishing(self) -> list[bool | None]:
-        """Whether each column is used up at the end; None where it depends on the case."""
-        gone = (self.end == 0) & (self.change < 0)
-        some, every = gone.any(axis=0).tolist(), gone.all(axis=0).tolist()
-        return [bool(a) if a == b else None for a, b in zip(some, every, strict=True)]
-
-    def amounts(self, j: int, gone: FloatArray, left: FloatArray, rows: Rows) -> FloatArray:
-        """Return column j, shape (m, q), or (m, 1) where it never changes."""
-        trend = self.trends[j]
-        if trend is Trend.STILL:
-            return rows(self.start[:, j])
-        change = rows(self.change[:, j])
-        if trend is Trend.RISES:
-            return rows(self.start[:, j]) + change * gone
-        falling = rows(self.end[:, j]) - change * left
-        if trend is Trend.FALLS:
-            return falling
-        return np.where(change < 0, falling, rows(self.start[:, j]) + change * gone)
-
-    def up_to(self, gone: FloatArray, left: FloatArray) -> FloatArray:
-        """Return every column at one place per case, shape (N, S + 2)."""
-        rise = self.start + self.change * gone[:, None]
-        return np.where(self.change < 0, self.end - self.change * left[:, None], rise)
 
 
 @record(eq=False)
@@ -219,7 +151,7 @@ class ReactionPath:
     def volume_ratio(self, place: Place) -> FloatArray:
         """Return the volume over that of the feed, shape (m, q) or (m, 1)."""
         last = self.account.start.shape[1] - 1
-        rows = _rows(place.case, self.size)
+        rows = rows_of(place.case, self.size)
         ratio = self.account.amounts(last, place.gone, place.left, rows)
         if self.expands:
             warmth = self.warmth(place)
@@ -284,7 +216,7 @@ class ReactionPath:
             with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
                 single, share = self._single.ln_rate(place.gone, place.left, place.ln_left)
             return single, _WHOLE if isinstance(share, float) else share
-        rows = _rows(place.case, self.size)
+        rows = rows_of(place.case, self.size)
         warmth = self.warmth(place)
         with np.errstate(divide="ignore", invalid="ignore", over="ignore"):
             absolute = _Logarithms(self, place, rows)
@@ -362,7 +294,7 @@ class ReactionPath:
 
     def ln_above_floor(self, factor: FlooredFactor, place: Place) -> FloatArray:
         """Return the logarithm of a driving force over its floor, shape (m, q)."""
-        rows, warmth = _rows(place.case, self.size), self.warmth(place)
+        rows, warmth = rows_of(place.case, self.size), self.warmth(place)
         columns = _Logarithms(self, place, rows)
         above = rows(factor.excess) + factor.above(columns, self.account.start.shape[1] - 2)
         if factor.of_temperature and warmth is not None:
@@ -477,12 +409,6 @@ class _FromLimit:
         return self.base + np.where(place.gone < 0.5, np.log(amount / rows(end)), near)
 
 
-def _rows(case: IndexArray, n: int) -> Rows:
-    if n == 1:
-        return lambda values: values[:, None]
-    return lambda values: values[case, None]
-
-
 def reaction_path(
     reactions: ReactionSet,
     key: int,
@@ -562,15 +488,15 @@ def reaction_path(
         )
     expands = warm is not None and feed.phase == "gas" and not constant_volume
 
-    largest, reactant = _reach(start, -slope)
+    largest, reactant = reach(start, -slope)
     exhausted, ahead = reactant, largest
     at_equilibrium = np.zeros(n, dtype=bool)
     opposing = None
     if ratio is not None:
-        onward, unmoved = _direction(ratio, start, np.log(c0), largest)
+        onward, unmoved = direction(ratio, start, np.log(c0), largest)
         opposing = ratio
         if not (onward > 0).all():
-            smallest, product = _reach(start, slope)
+            smallest, product = reach(start, slope)
             ahead = np.where(onward > 0, largest, np.where(onward < 0, 0.0 - smallest, 0.0))
             exhausted = np.where(onward < 0, product, reactant)
             opposing = ratio.to_the(np.where(onward < 0, -1.0, 1.0))
@@ -580,12 +506,12 @@ def reaction_path(
         # Beyond the ranges nothing is known of an equilibrium, and none is looked for.
         within, _ = warm.furthest(ahead)
         at_range, ahead = np.abs(within) < np.abs(ahead), within
-    whole = _to_end(start, slope, ahead)
+    whole = to_end(start, slope, ahead)
     limit, end, distance = ahead, whole.end, ahead - asked
     if opposing is not None:
         assert law.reverse is not None
-        search = _Imbalance(whole, opposing, np.log(c0), ahead, warm, expands)
-        share, rest, found = _equilibrium(search, law.reverse.one_equilibrium)
+        search = Imbalance(whole, opposing, np.log(c0), ahead, warm, expands)
+        share, rest, found = equilibrium(search, law.reverse.one_equilibrium)
         at_equilibrium = found | unmoved
         at_range = at_range & ~at_equilibrium
         limit = np.where(found, ahead * share, ahead)
@@ -741,209 +667,6 @@ def _columns(
     return start, slope
 
 
-def _reach(start: FloatArray, consumed: FloatArray) -> tuple[FloatArray, IndexArray]:
-    """Return how far the consumed substances last, in X, and which is the first to go."""
-    substances = slice(0, start.shape[1] - 2)
-    rate = consumed[0, substances]
-    lasts = np.full((len(start), rate.size), np.inf)
-    np.divide(start[:, substances], rate, out=lasts, where=rate > 0)
-    first: IndexArray = lasts.argmin(axis=1)
-    return lasts[np.arange(len(start)), first], first
-
-
-def _to_end(start: FloatArray, slope: FloatArray, x: FloatArray) -> Account:
-    """Return the account from the feed to conversion X, where something may be used up."""
-    change = slope * x[:, None]
-    end = start + change
-    # What is used up exactly is known to the rounding of its own feed only.
-    end = np.where(np.abs(end) <= 4 * _EPS * start, 0.0, end)
-    return Account(start, change, end)
-
-
-def _value_of_one(product: PowerProduct, amounts: list[float], ln_c0: float) -> float | None:
-    """Return the logarithm of a product at the feed, of one case; None if it has none."""
-    total = float(product.ln_factor[0])
-    for power, amount in zip(product.exponents[0].tolist(), amounts, strict=False):
-        if power:
-            if amount == 0:
-                return None
-            total += power * (ln_c0 + math.log(amount))
-    return total
-
-
-def _direction(
-    ratio: PowerProduct, start: FloatArray, ln_c0: FloatArray, largest: FloatArray
-) -> tuple[FloatArray, BoolArray]:
-    """Return the sign of the net reaction at the feed, and where it is at equilibrium."""
-    if len(start) == 1 and not ratio.floored:
-        total = _value_of_one(ratio, start[0].tolist(), float(ln_c0[0]))
-        if total is not None:
-            return np.array([-1.0 if total > 0 else float(total < 0)]), np.array([total == 0])
-    with np.errstate(divide="ignore", invalid="ignore"):
-        ln = np.log(start)
-        value = ratio.ln_value(lambda j: (ln_c0 + ln[:, j])[:, None], lambda a: a[:, None])[:, 0]
-    # Substances of both sides are absent: neither rate is above zero.
-    neither = np.isnan(value)
-    if (neither & (largest > 0)).any():
-        raise refuse(
-            "reaction-does-not-start",
-            ("feed", "flows"),
-            "the feed lacks substances on which the forward and the reverse rate depend, so that "
-            "both are zero; feed some of each, or check the orders",
-        )
-    direction: FloatArray = -np.sign(np.where(neither, 0.0, value))
-    return direction, (direction == 0) & ~neither
-
-
-@dataclass(frozen=True, eq=False)
-class _Imbalance:
-    """Logarithm of the opposing over the driving rate between the feed and exhaustion, N cases."""
-
-    whole: Account
-    opposing: PowerProduct
-    ln_c0: FloatArray
-    ahead: FloatArray
-    adiabat: Adiabat | None
-    expands: bool
-
-    def __call__(self, logit: FloatArray, case: IndexArray) -> FloatArray:
-        """Return it at logits of the way gone, shape (m,)."""
-        whole, n = self.whole, len(self.ln_c0)
-        gone, left = _share(logit)[:, None], _share(-logit)[:, None]
-        change = whole.change[case]
-        falling = whole.end[case] - change * left
-        amounts = np.where(change < 0, falling, whole.start[case] + change * gone)
-        warmth = None
-        if self.adiabat is not None:
-            above = self.adiabat.from_feed(case, self.ahead[case, None] * gone)
-            start = self.adiabat.temperature[case, None]
-            warmth = Warmth(start + above, start, above)
-        with np.errstate(divide="ignore", invalid="ignore"):
-            ln = np.log(amounts)
-            ln = ln[:, :-1] + (self.ln_c0[case, None] - ln[:, -1:])
-            if self.expands and warmth is not None:
-                ln = ln - warmth.ln_ratio
-            rows = _rows(case, n)
-            value = self.opposing.ln_value(lambda j: ln[:, j, None], rows, warmth)
-        return np.broadcast_to(value[:, 0], logit.shape)
-
-    @property
-    def stands_alone(self) -> bool:
-        """Whether it is one isothermal case without floors, which floats do for."""
-        return len(self.ln_c0) == 1 and self.adiabat is None and not self.opposing.floored
-
-    def of_one(self) -> Callable[[float], float]:
-        """Return it as a function of a float, of one case that stands alone."""
-        whole, opposing = self.whole, self.opposing
-        last = whole.start.shape[1] - 1
-        exponents = opposing.exponents[0].tolist()
-        columns = [
-            (power, *(float(a[0, j]) for a in (whole.start, whole.change, whole.end)))
-            for j, power in [*enumerate(exponents), (last, -math.fsum(exponents))]
-            if power
-        ]
-        fixed = float(opposing.ln_factor[0]) + math.fsum(exponents) * float(self.ln_c0[0])
-
-        def imbalance(logit: float) -> float:
-            gone, left = 1.0 / (1.0 + math.exp(-logit)), 1.0 / (1.0 + math.exp(logit))
-            total = fixed
-            for power, start, change, end in columns:
-                amount = end - change * left if change < 0 else start + change * gone
-                total += power * (math.log(amount) if amount > 0 else -math.inf)
-            return total
-
-        return imbalance
-
-    def at(self, points: FloatArray, cases: IndexArray) -> FloatArray:
-        """Return it at the same logits of some cases, shape (m, p)."""
-        values = np.empty((len(cases), points.size))
-        for first in range(0, len(cases), _SCAN_BLOCK):
-            some = cases[first : first + _SCAN_BLOCK]
-            scanned = self(np.tile(points, some.size), np.repeat(some, points.size))
-            values[first : first + _SCAN_BLOCK] = scanned.reshape(some.size, -1)
-        return values
-
-
-def _equilibrium(imbalance: _Imbalance, one: bool) -> tuple[FloatArray, FloatArray, BoolArray]:
-    """Return where equilibrium stands between the feed and exhaustion.
-
-    ``one``: there is one at most, of an isothermal reaction.
-
-    Returns
-    -------
-    share, rest : ndarray, shape (N,)
-        X_eq over the conversion at exhaustion, and what is missing to one.
-    found : ndarray of bool, shape (N,)
-        Whether there is one at all.
-    """
-    n = len(imbalance.ln_c0)
-    moves: IndexArray = np.flatnonzero(imbalance.whole.change.any(axis=1))
-    if one and moves.size and imbalance.stands_alone:
-        alone = _single_root(imbalance.of_one())
-        if alone is not None:
-            at = np.array([alone])
-            return _share(at), _share(-at), at < _FAR
-    logit, found = np.full(n, _FAR), np.zeros(n, dtype=bool)
-    several: BoolArray = np.full(len(moves), not one)
-    if one:
-        values = imbalance.at(_ONE, moves)
-        if imbalance.adiabat is not None:
-            # Heats that contradict the constant may turn it on the way.
-            with np.errstate(invalid="ignore"):
-                several = np.asarray(~(np.diff(values, axis=1) >= 0).all(axis=1))
-        steady = moves[~several]
-        logit[steady], found[steady] = _first_root(imbalance, _ONE, values[~several], steady)
-    if several.any():
-        bent = moves[several]
-        logit[bent], found[bent] = _first_root(imbalance, _SCAN, imbalance.at(_SCAN, bent), bent)
-    return _share(logit), _share(-logit), found
-
-
-def _single_root(imbalance: Callable[[float], float]) -> float | None:
-    """Return the logit of the one equilibrium, ``_FAR`` if there is none; None if not told."""
-    low, high = imbalance(-_FAR), imbalance(_FAR)
-    if math.isnan(low) or math.isnan(high):
-        return None
-    if low >= 0:
-        return -_FAR
-    if high < 0:
-        return _FAR
-    beyond = imbalance(0.0) < 0
-    near, far = 0.0, 2.0 if beyond else -2.0
-    while (imbalance(far) < 0) == beyond and abs(far) < _FAR:
-        near, far = far, 4.0 * far
-    far = min(max(far, -_FAR), _FAR)
-    if not (math.isfinite(imbalance(near)) and math.isfinite(imbalance(far))):
-        return None
-    return find_one_root(
-        imbalance, min(near, far), max(near, far), subject=("target", "conversion")
-    )
-
-
-def _first_root(
-    imbalance: _Imbalance, points: FloatArray, values: FloatArray, cases: IndexArray
-) -> tuple[FloatArray, BoolArray]:
-    """Return the logit at which each case first comes to equilibrium, and whether it does."""
-    over = values >= 0
-    at = over.argmax(axis=1)
-    found: BoolArray = np.asarray(over.any(axis=1))
-    # At the first point already: no conversion can be told from that of the feed.
-    logit = np.where(found, -_FAR, _FAR)
-    inside: IndexArray = np.flatnonzero(found & (at > 0))
-    if inside.size:
-        logit[inside] = find_root(
-            lambda x, i: imbalance(x, cases[inside[i]]),
-            points[at[inside] - 1],
-            points[at[inside]],
-            subject=("target", "conversion"),
-        )
-    return logit, found
-
-
-def _share(logit: FloatArray) -> FloatArray:
-    return 1.0 / (1.0 + np.exp(-logit))
-
-
 def _check_reach(
     reactions: ReactionSet, feed: Stream, law: RateLaw, path: ReactionPath, *, open_end: bool
 ) -> None:
@@ -951,9 +674,10 @@ def _check_reach(
     left = path.target_left
     if not open_end:
         beyond = (left < 0) | (path.target_gone < 0) | (path.limit == 0) & (path.target != 0)
-        beyond_range = path.at_range & beyond & (path.target * path.limit > 0)
-        if beyond_range.any():
-            assert path.adiabat is not None
+        if path.adiabat is not None and (path.at_range & beyond).any():
+            beyond_range = path.at_range & beyond & (path.target * path.limit > 0)
+            if not beyond_range.any():
+                raise out_of_reach(reactions, path, beyond)
             i = int(np.flatnonzero(beyond_range)[0])
             subject = target_subject(i, path.lead)
             raise path.adiabat.out_of_reach(i, float(path.target[i]), subject)
@@ -1000,7 +724,7 @@ def check_end(
             s = orders.shape[1]
             absent = (account.start[:, :s] == 0) | (account.end[:, :s] == 0) & ends
             law.check_absences(reactions, 0, absent, orders, place)
-    if ((account.end[:, -2:] == 0) & ends).any():
+    if complete.any() and ((account.end[:, -2:] == 0) & ends).any():
         raise refuse(
             "phase-vanishes",
             ("target", "conversion"),

@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from core.errors import refuse
+from core.errors import Amount, Fact, Fault, Refused, refuse
 from core.reactors import along_path, recycle
 from core.reactors.balances import Balances, Basis
 from core.reactors.fed_batch import accumulation_of
@@ -79,7 +79,13 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
     if isinstance(reactor, RecyclePlugFlow):
         return recycle.around(problem, basis, before, work, size=size)
     if along_path.has_path(problem):
-        return _observed(along_path.rated(problem, basis, size), before)
+        try:
+            return _observed(along_path.rated(problem, basis, size), before)
+        except Refused as refused:
+            # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
+            # the integrand is too rough for its panels; a march goes on.
+            if refused.faults[0].code != "integral-not-converged":
+                raise
     return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
 
 
@@ -101,6 +107,7 @@ def size_for(problem: ReactorProblem, target: Target, before: Fed, work: Work) -
     """
     reactor, basis = problem.reactor, basis_of(problem)
     check_feed(problem)
+    own_target(problem, before, target)
     if isinstance(reactor, StirredTank | TanksInSeries):
         return tanks_for(problem, basis, before, work, target)
     if isinstance(reactor, RecyclePlugFlow):
@@ -119,6 +126,16 @@ def own_target(problem: ReactorProblem, before: Fed, target: Target) -> Target:
     key = problem.key
     entering = float(problem.feed.flows[key])
     wanted = target.conversion * float(before.flows[key]) - before.consumed
+    if target.conversion * before.consumed > 0 and wanted * target.conversion <= 0:
+        facts: dict[str, Fact] = {
+            "target": Amount(target.conversion),
+            "reached": Amount(before.consumed / float(before.flows[key])),
+        }
+        detail = (
+            "the stages before come to a conversion of {reached}, which is past the target of"
+            " {target}; ask for more, or make them smaller"
+        )
+        raise Refused([Fault("target-out-of-reach", ("target",), detail, facts)])
     return ConversionTarget(wanted / entering) if entering else target
 
 

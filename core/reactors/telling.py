@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -14,6 +14,7 @@ from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNK
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
 from core.reactors.friction import bed_length
+from core.reactors.mixing import mixed
 from core.reactors.observed import Observer, Seen
 from core.reactors.problem import (
     Batch,
@@ -120,7 +121,8 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
     if not batch and volume is not None and v0 is not None:
         space_time = volume / float(v0)
     extents, told = _extents(problem, course, seen)
-    found = energetics_of(problem, Outcome(outlet, extents, course.limit))
+    entered = _entered(problem, size)
+    found = energetics_of(problem, Outcome(outlet, extents, course.limit, entered))
     constants = [(j, c) for j, c in enumerate(problem.constants) if c is not None]
     t = feed.temperature
     of_constants: dict[str, StandardProperties] = {}
@@ -184,6 +186,27 @@ def outlet_of(course: Course) -> Stream:
     check_temperatures(course.balances.problem, seen.temperature)
     check_gas(course.balances.problem, seen)
     return course.observer.stream(seen)
+
+
+def _entered(problem: ReactorProblem, time: float) -> Stream | None:
+    """Return the charge of a fed batch with all that was fed to it, as they come together.
+
+    None of any other reactor, and where the heat capacities that it takes are not known.
+    """
+    reactor, known = problem.reactor, problem.heats
+    if not isinstance(reactor, Batch) or reactor.fed is None:
+        return None
+    if known is None or known.of_all is None:
+        return None
+    stream, lasts = reactor.fed.stream, min(time, reactor.fed.until)
+    volume = stream.liquid_volumetric_flow
+    fed = replace(
+        stream,
+        flows=stream.flows * lasts,
+        batch=True,
+        liquid_volumetric_flow=None if volume is None else volume * lasts,
+    )
+    return mixed(problem, (problem.feed, fed), ("reactor", "fed", "stream"))
 
 
 def _extents(problem: ReactorProblem, course: Course, seen: Seen) -> tuple[FloatArray, bool]:

@@ -6,17 +6,17 @@ and heat capacities that go with temperature, coolant in the same direction, Erg
 with constant mass velocity. The state is y = (F_A .. F_H, T, T_coolant, P), SI.
 
 It stands here twice: with arrays and a matrix of coefficients, as scripts are usually
-written, and as straight-line code that runs on floats and on arrays of cases alike.
+written, and written out, of which sympy makes straight-line code on floats and on arrays.
 """
 
 from __future__ import annotations
 
-import math
 from collections.abc import Callable, Sequence
 from functools import lru_cache
 from typing import Any
 
 import numpy as np
+import sympy
 
 from core.arrays import FloatArray
 
@@ -93,7 +93,7 @@ def script(p: Sequence[float]) -> Callable[[float, FloatArray], FloatArray]:
 
 
 def slopes(exp: Callable[[Any], Any], y: Sequence[Any], p: Sequence[Any]) -> list[Any]:
-    """Return dy/dV by straight-line code, with ``exp`` of floats, arrays or symbols."""
+    """Return dy/dV written out, with ``exp`` of floats, arrays or symbols."""
     fa, fb, fc, fd, fe, ff, fg, fh, t, tc, pressure = y
     k1, k2, k3, k4, ratio_there, transfer, coolant = p
     total = fa + fb + fc + fd + fe + ff + fg + fh
@@ -139,17 +139,29 @@ _VISCOUS = 150 * VISCOSITY * (1 - VOIDS) ** 2 / (PARTICLE**2 * VOIDS**3)
 _INERTIAL = 1.75 * (1 - VOIDS) / (PARTICLE * VOIDS**3 * AREA)
 
 
+@lru_cache(None)
+def _code(modules: str) -> Callable[..., list[Any]]:
+    """Return the straight-line code with what is common to its expressions taken out."""
+    y, p = sympy.symbols("y:11"), sympy.symbols("p:7")
+    code: Callable[..., list[Any]]
+    code = sympy.lambdify((y, p), slopes(sympy.exp, y, p), modules=modules, cse=True)
+    return code
+
+
 def on_floats(p: Sequence[float]) -> Callable[[float, list[float]], list[float]]:
-    """Return the straight-line code with its parameters bound."""
-    exp = math.exp
-    return lambda _x, y: slopes(exp, y, p)
+    """Return the right-hand side of one case, ``f(x, y)``."""
+    code = _code("math")
+    return lambda _x, y: code(y, p)
+
+
+def on_arrays() -> Callable[[Sequence[FloatArray], Sequence[FloatArray]], list[FloatArray]]:
+    """Return the right-hand side of many cases, ``f(y, p)``."""
+    return _code("numpy")
 
 
 @lru_cache(None)
 def jacobian() -> Callable[..., list[list[Any]]]:
-    """Return ``j(y, p)``, the derivatives as straight-line code on arrays, made by sympy."""
-    import sympy
-
+    """Return the derivatives of many cases, ``j(y, p)``."""
     y, p = sympy.symbols("y:11"), sympy.symbols("p:7")
     entries = list(sympy.Matrix(slopes(sympy.exp, y, p)).jacobian(y))
     code = sympy.lambdify((y, p), entries, modules="numpy", cse=True)

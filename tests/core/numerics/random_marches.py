@@ -15,7 +15,8 @@ from typing import Any
 import numpy as np
 from scipy.integrate import solve_ivp
 
-from core.numerics.batched import CaseEvent, march_cases
+from core.numerics.batched import march_cases
+from core.numerics.case_events import CaseEvent
 from core.numerics.integration import Event, march
 
 

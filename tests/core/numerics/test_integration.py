@@ -146,7 +146,7 @@ def test_outputs_just_before_an_event_among_several():
 
 def test_a_value_that_trembles_around_zero_is_bounded_work():
     trembles = Event(lambda x, y: math.sin(3e4 * x) * y[0], 0, False)
-    fault = refused(turning, [0.0, 9.0], [1.0, 0.0], events=[trembles], most=20_000)
+    fault = refused(turning, [0.0, 9.0], [1.0, 0.0], events=[trembles], most=8_000)
     assert fault.code == "compute-budget"
 
 

@@ -1,0 +1,288 @@
+"""The three reactor questions as a caller asks them: over every example, as JSON, CSV and page."""
+
+from __future__ import annotations
+
+import csv
+import io
+
+import numpy as np
+import pytest
+from numpy.testing import assert_allclose
+
+from core.substances.formula import parse_formula
+from schemas.examples import EXAMPLES
+from tests.support import assert_refused, changed, post, result, value
+
+QUESTIONS = ("volume", "rating", "operating-point")
+ANSWERED = {e.name: e for e in EXAMPLES if e.operation in QUESTIONS and e.status == 200}
+
+
+def asked(name):
+    return ANSWERED[name].request
+
+
+def found(client, name):
+    return result(client, ANSWERED[name].operation, asked(name))
+
+
+def places(told):
+    """Return each reactor at work of a result: of an operating point its solutions."""
+    return told.get("solutions", [told])
+
+
+@pytest.fixture(scope="module")
+def answers(app):
+    client = app.test_client()
+    return {name: found(client, name) for name in ANSWERED}
+
+
+def test_every_kind_mode_and_form_of_target_is_shown():
+    from schemas.reactors.kinds import CONTINUOUS
+    from schemas.reactors.reactor import REACTOR_SCHEMAS
+    from schemas.reactors.thermal import THERMAL_SCHEMAS
+
+    by = {q: [e.request for e in ANSWERED.values() if e.operation == q] for q in QUESTIONS}
+    requests = [request for each in by.values() for request in each]
+    assert {r["reactor"]["kind"] for r in requests} == set(REACTOR_SCHEMAS)
+    assert {r["reactor"]["kind"] for r in by["rating"]} >= {*CONTINUOUS, "batch", "train"} - {
+        "packed-bed"
+    }
+    assert {r.get("thermal", {"mode": "isothermal"})["mode"] for r in requests} == set(
+        THERMAL_SCHEMAS
+    )
+    arrangements = {r["thermal"].get("arrangement", "constant") for r in requests
+                    if r.get("thermal", {}).get("mode") == "exchange"}  # fmt: skip
+    assert arrangements == {"constant", "co-current", "counter-current"}
+    assert {r["free"] for r in by["operating-point"]} == {
+        "feed-rate", "temperature", "pressure", "utility-temperature"
+    }  # fmt: skip
+    forms = {name for r in requests for name in r.get("target", {})}
+    assert forms >= {"conversion", "approach", "flow", "mole_fraction", "concentration", "yield",
+                     "maximum"}  # fmt: skip
+    stages = {s["kind"] for r in requests for s in r["reactor"].get("stages", ())}
+    assert stages >= {"packed-bed", "mix", "cool", "heat", "separate"}
+    assert any("fed" in r["reactor"] for r in requests)
+    assert any("clean_bed" in r["reactor"] for r in requests)
+
+
+def atoms(stream, formulas):
+    """Return the amount of each element in a stream of an answer."""
+    total: dict[str, float] = {}
+    for name, said in stream["species"].items():
+        flow = (said.get("flow") or said["amount"])["value"]
+        for element, count in formulas[name].items():
+            total[element] = total.get(element, 0.0) + flow * count
+    return total
+
+
+def formulas_of(request, names):
+    said = request.get("species", {})
+    return {
+        name: parse_formula(said.get(name, {}).get("formula", name))[0].elements for name in names
+    }
+
+
+OF_FORMULAS = [
+    name
+    for name, example in ANSWERED.items()
+    if not any("molar_mass" in s and "formula" not in s
+               for s in example.request.get("species", {}).values())
+    and example.request["reactor"]["kind"] != "train"
+    and "fed" not in example.request["reactor"]
+]  # fmt: skip
+
+
+@pytest.mark.parametrize("name", OF_FORMULAS)
+def test_elements_are_kept(answers, name):
+    for told in places(answers[name]):
+        formulas = formulas_of(asked(name), told["inlet"]["species"])
+        into, out = (atoms(told[side], formulas) for side in ("inlet", "outlet"))
+        for element, amount in into.items():
+            assert_allclose(out[element], amount, rtol=1e-9)
+
+
+def mode(name):
+    return asked(name).get("thermal", {}).get("mode", "isothermal")
+
+
+def test_where_no_heat_passes_the_outlet_is_warmer_by_the_adiabatic_rise(answers):
+    names = [n for n in ANSWERED if mode(n) == "adiabatic"
+             and asked(n)["reactor"]["kind"] != "train"]  # fmt: skip
+    assert len(names) >= 3
+    for name in names:
+        for told in places(answers[name]):
+            rise = value(told["heat"]["adiabatic_rise"], "K")
+            into, out = (told[side]["temperature"] for side in ("inlet", "outlet"))
+            assert into["unit"] == out["unit"] == "degC"
+            assert_allclose(out["value"] - into["value"], rise, rtol=1e-6)
+            assert told["heat"]["duty"]["value"] == 0
+
+
+@pytest.mark.parametrize(
+    ("name", "coefficient"),
+    [
+        ("cooled-tubes-in-counter-current", 9.0),
+        ("cooled-tubes-in-co-current", 9.0),
+        ("partial-oxidation-in-cooled-tubes", 52.0),
+    ],
+)
+def test_the_duty_is_what_passes_to_the_utility_along_the_tubes(client, name, coefficient):
+    told = result(client, ANSWERED[name].operation, changed(asked(name), profile_points=501))
+    way = told["profile"]["columns"]
+    t = np.array(way["temperature"])
+    utility = way.get("utility_temperature")
+    if utility is None:
+        utility = np.full_like(t, 225.0)
+    passed = np.trapezoid(coefficient * (np.array(utility) - t), way["volume"])
+    assert_allclose(value(told["heat"]["duty"], "kW"), passed, rtol=1e-4)
+    if "utility_outlet_temperature" in told:
+        # 14 kW/K of water that enters at 20 degC.
+        out = value(told["utility_outlet_temperature"], "degC")
+        assert_allclose(14.0 * (out - 20.0), -passed, rtol=1e-4)
+
+
+def test_the_duty_of_a_fed_batch_counts_what_is_fed_as_cold_as_it_is(client):
+    request = changed(asked("fed-batch-and-what-accumulates"), profile_points=501)
+    told = result(client, "rating", request)
+    way = told["profile"]["columns"]
+    hours, volume = np.array(way["time"]), np.array(way["volume"])
+    passed = np.trapezoid(2.5 * volume * (15.0 - np.array(way["temperature"])), 3.6 * hours)
+    assert_allclose(value(told["heat"]["duty"], "MJ"), passed, rtol=1e-4)
+    # 3 h of 0.38 m3/h on 1.09 m3.
+    assert_allclose(volume[-1], 1.09 + 3 * 0.38)
+
+
+SIZED = [n for n, e in ANSWERED.items() if e.operation == "volume"
+         and "maximum" not in e.request["target"]]  # fmt: skip
+
+
+@pytest.mark.parametrize("name", SIZED)
+def test_a_reactor_of_the_size_found_meets_its_target(client, answers, name):
+    told, request = answers[name], asked(name)
+    rated = changed(request, target=...)
+    reactor = rated["reactor"]
+    if reactor["kind"] == "train":
+        for stage, of in zip(reactor["stages"], told["stages"], strict=True):
+            if "catalyst_mass" not in stage and stage["kind"] == "packed-bed":
+                stage["catalyst_mass"] = of["catalyst_mass"]
+    else:
+        size = next(n for n in ("time", "catalyst_mass", "volume") if n in told)
+        reactor[size] = told[size]
+    again = result(client, "rating", rated)
+    # A tank with several states may come to another one.
+    conversions = [s["conversion"]["value"] for s in again.get("steady_states", [again])]
+    assert min(abs(x - told["conversion"]["value"]) for x in conversions) < 1e-7
+
+
+POINTS = [n for n, e in ANSWERED.items() if e.operation == "operating-point"]
+
+
+@pytest.mark.parametrize("name", POINTS)
+def test_a_reactor_run_where_the_target_is_met_meets_it(client, answers, name):
+    request, told = asked(name), answers[name]
+    for one in told["solutions"]:
+        rated = changed(request, target=..., free=..., between=...)
+        at = one["value"]
+        if request["free"] == "feed-rate":
+            share = at["value"] / float(request["feed"]["volumetric_flow"].split()[0])
+            rated["feed"]["volumetric_flow"] = at
+            assert share > 0
+        elif request["free"] == "utility-temperature":
+            rated["thermal"]["utility_temperature"] = at
+        else:
+            rated["feed"][request["free"]] = at
+        again = result(client, "rating", rated)
+        assert_allclose(again["conversion"]["value"], one["conversion"]["value"], rtol=1e-7)
+    inside = [one["value"]["value"] for one in told["solutions"]]
+    assert inside == sorted(inside)
+
+
+def test_the_best_temperature_is_a_best_one(client, answers):
+    request = asked("two-temperatures-and-the-best-one")
+    best = answers["two-temperatures-and-the-best-one"]["optimum"]
+    assert best["at_end"] is False
+    rated = changed(request, target=..., free=..., between=...)
+    for aside in (-1.0, 1.0):
+        near = {**best["value"], "value": best["value"]["value"] + aside}
+        there = result(client, "rating", changed(rated, feed__temperature=near))
+        assert there["conversion"]["value"] < best["conversion"]["value"]
+
+
+def notes(client, name, **places):
+    example = ANSWERED[name]
+    return {
+        note["code"]: note
+        for note in post(client, example.operation, changed(example.request, **places)).get_json()[
+            "notes"
+        ]
+    }
+
+
+def test_cautions(client):
+    tank = notes(client, "three-steady-states-of-a-tank")
+    assert tank["several-steady-states"]["severity"] == "caution"
+    assert tank["temperature-limit-exceeded"]["pointer"] == "/temperature_limit"
+    cool = notes(client, "three-steady-states-of-a-tank", temperature_limit="150 degC")
+    assert "temperature-limit-exceeded" not in cool
+    fed = notes(client, "fed-batch-and-what-accumulates")
+    assert "above the limit of 70 degC" in fed["accumulated-reactant"]["detail"]
+    assert "fuel-with-oxidant" in notes(client, "partial-oxidation-in-cooled-tubes")
+    tanks = notes(client, "intermediate-in-four-tanks")
+    assert "of the tanks 1, 2, 3, 4 are" in tanks["search-not-proven"]["detail"]
+
+
+@pytest.mark.parametrize("name", ANSWERED)
+def test_csv(client, answers, name):
+    example = ANSWERED[name]
+    response = post(client, example.operation, example.request, headers={"Accept": "text/csv"})
+    assert response.mimetype == "text/csv"
+    rows = list(csv.reader(io.StringIO(response.get_data(as_text=True))))
+    assert len({len(row) for row in rows}) == 1
+    told = answers[name]
+    one = places(told)[0]
+    if len(places(told)) > 1:
+        assert len(rows) == 1 + len(told["solutions"])
+    elif "profile" in one:
+        assert len(rows) == 1 + len(one["profile"]["columns"]["conversion"])
+    elif any("profile" in stage for stage in one.get("stages", ())):
+        within = [s["profile"]["columns"]["conversion"] for s in one["stages"] if "profile" in s]
+        assert len(rows) == 1 + sum(map(len, within))
+        assert rows[0][0] == "stage"
+    else:
+        assert len(rows) == 1 + len(one["outlet"]["species"])
+
+
+def test_what_a_rating_needs(client):
+    tank = asked("three-steady-states-of-a-tank")
+    unsized = changed(tank, reactor__volume=...)
+    assert_refused(post(client, "rating", unsized), 422, "size-not-stated", "/reactor")
+    target = changed(tank, target={"conversion": 0.5})
+    assert_refused(post(client, "rating", target), 400, "unknown-field", "/target")
+
+
+def test_the_order_of_reactions_does_not_matter(client):
+    request = asked("partial-oxidation-in-cooled-tubes")
+    turned = changed(request, reactions=request["reactions"][::-1])
+    one, other = (result(client, "rating", r) for r in (request, turned))
+    for name, said in one["outlet"]["species"].items():
+        assert_allclose(other["outlet"]["species"][name]["flow"]["value"],
+                        said["flow"]["value"], rtol=1e-7)  # fmt: skip
+    assert_allclose(
+        other["extents"]["combustion"]["value"], one["extents"]["combustion"]["value"], rtol=1e-7
+    )
+
+
+def test_units_do_not_matter(client):
+    request = asked("bed-against-its-clean-pressure-drop")
+    other = changed(
+        request,
+        reactor__particle_diameter="0.354330708661417 in",
+        reactor__cross_section="380000 cm2",
+        reactor__viscosity="3.7e-5 Pa s",
+        reactor__catalyst_mass="21000 kg",
+        feed__temperature="698.15 K",
+        report_in={"temperature": "degC"},
+    )
+    one, two = (result(client, "rating", r) for r in (request, other))
+    for path in ("conversion", "pressure_drop", "length"):
+        assert_allclose(two[path]["value"], one[path]["value"], rtol=1e-8)
