@@ -24,6 +24,7 @@ from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
+from scipy.optimize import brentq
 
 from core.arrays import BoolArray, FloatArray, IntArray
 from core.numerics.linear import solve_stack
@@ -41,6 +42,7 @@ _FLOOR = 0.02  # of a flow that one step may leave
 _KELVINS = 100.0  # what counts as much as all that is fed, in norms
 _LARGEST_CHANGE = 0.6  # of the temperature in one step, in these
 _NEWTON_STEPS = 40
+_STEPS_FROM_STARTS = 15  # of further ones: who has not come to a state by then seldom does
 _PSEUDO_STEPS = 150
 _RESTARTS = 6
 _SHORTENED = (1.0, 0.5, 0.2, 0.05, 0.01)
@@ -49,7 +51,10 @@ _FIRST = -7.0  # logarithm of the volume, over that of the case, at which the br
 _FIRST_SHARE = 1e-4  # of the feed that reacts there
 _FIRST_FEEDBACK = 0.05  # of what flows, that reactions started by it give back there
 _FARTHEST = float(np.log(1e3))  # beyond the volume asked for
-_LARGEST_STEP, _SMALLEST_STEP = 0.4, 1e-9
+_FIRST_STEP, _LARGEST_STEP, _SMALLEST_STEP = 0.05, 0.4, 1e-9
+_FOLLOWED = 1e-6  # of a change, whose square is no matter while the branch is followed
+_TRIALS = 9
+_FARTHEST_OFF = 2.0  # that a correction may lead
 _SAME = 1e-6  # of two states, that are one
 
 
@@ -110,6 +115,7 @@ class Network:
         self.size = self.substances + self.heated
         self.fed: FloatArray = balance.feed.sum(axis=1)
         rates, slopes = balance.rates, balance.slopes
+        self.evaluations = 0
         self._line = StraightLine(rates.tape, rates.inputs, rates.outputs + slopes.outputs)
 
     @cached_property
@@ -140,7 +146,7 @@ class Network:
             if t is not None:
                 state = np.concatenate([state, t[None]])
             with np.errstate(all="ignore"):
-                rates = balance.rates.on_arrays(rows)(np.zeros(n), state)
+                rates = balance.on(balance.rates, rows)(np.zeros(n), state)
             more = there.copy()
             for rate, nu in zip(rates, balance.nu, strict=True):
                 sign = np.broadcast_to(np.sign(rate), n)
@@ -161,6 +167,14 @@ class Network:
             return y
         return np.concatenate([y, temperature[:, None] / _KELVINS], axis=1)
 
+    def points_of(self, branch: Branch, case: int) -> FloatArray:
+        """Return the points of a branch, scaled, and last ln(volume over that of the case)."""
+        columns = [branch.flows / self.fed[case]]
+        if branch.temperature is not None:
+            columns.append(branch.temperature[:, None] / _KELVINS)
+        ln_v = branch.ln_volume - np.log(self.balance.volume[case])
+        return np.concatenate([*columns, ln_v[:, None]], axis=1)
+
     def extents(self, y: FloatArray, ln_v: FloatArray, case: IntArray) -> FloatArray:
         """Return the extents, shape (R, m), mol/s: of independent reactions by what flows."""
         balance, m = self.balance, len(case)
@@ -170,7 +184,7 @@ class Network:
             return np.asarray(np.linalg.lstsq(balance.nu.T, changes, rcond=None)[0], dtype=float)
         t = self.temperature(y)
         state = flows if t is None else np.concatenate([flows, t[None]])
-        rates = balance.rates.on_arrays(case)(np.zeros(m), state)
+        rates = balance.on(balance.rates, case)(np.zeros(m), state)
         return rows_of(rates, m) * balance.volume[case] * np.exp(ln_v)
 
     def temperature(self, y: FloatArray) -> FloatArray | None:
@@ -187,6 +201,7 @@ class Network:
             Of the volume over that of the case.
         case : ndarray of int, shape (m,)
         """
+        self.evaluations += len(case)
         with np.errstate(all="ignore"):
             return self._evaluate(y, ln_v, case)
 
@@ -198,7 +213,7 @@ class Network:
         t = self.temperature(y)
         if t is not None:
             state = np.concatenate([state, t[None]])
-        values = self._line.on_arrays(case)(np.zeros(m), state)
+        values = balance.on(self._line, case)(np.zeros(m), state)
         table = rows_of(values, m)
         rates = table[:r] * (volume / fed)
         # By scaled flows, then by scaled temperature.
@@ -461,8 +476,15 @@ def distinct(network: Network, states: FloatArray, case: int) -> FloatArray:
 def more_states(network: Network, case: int, starts: int, seed: int = 0) -> FloatArray:
     """Return the states that Newton's method comes to from seeded compositions, shape (k, n)."""
     rows: IntArray = np.full(starts, case)
-    y = _other_starts(network, rows, np.random.default_rng([seed, starts]))
-    found, errors = newton(network, y, np.zeros(starts), rows)
+    return states_from(
+        network, case, _other_starts(network, rows, np.random.default_rng([seed, starts]))
+    )
+
+
+def states_from(network: Network, case: int, starts: FloatArray) -> FloatArray:
+    """Return the states that Newton's method comes to from scaled states, shape (m, n)."""
+    rows: IntArray = np.full(len(starts), case)
+    found, errors = newton(network, starts, np.zeros(len(starts)), rows, _STEPS_FROM_STARTS)
     return found[errors <= ACCEPTED]
 
 
@@ -578,16 +600,16 @@ def follow(
         return _branch(network, case, points, whole=False)
     direction = np.zeros(network.size + 1)
     direction[-1] = 1.0
-    step = 0.05
+    step = _FIRST_STEP
     whole = False
-    while len(points) < most_points:
+    while len(points) < most_points and not whole:
         here = points[-1]
         tangent = _tangent(network, here, one, direction)
         if tangent is None:
             break
         found = None
         while step >= _SMALLEST_STEP:
-            found, trials = _corrected(network, here, tangent, step, one)
+            found, trials = _corrected(network, here, tangent, step, one, settled=_FOLLOWED)
             if found is not None:
                 break
             step *= 0.4
@@ -595,10 +617,8 @@ def follow(
             break
         direction = tangent
         points.append(found)
-        step = min(step * (1.6 if trials <= 3 else 1.0 if trials <= 5 else 0.7), _LARGEST_STEP)
-        if found[-1] >= farthest:
-            whole = True
-            break
+        step = min(step * (1.6 if trials <= 2 else 1.2 if trials <= 3 else 0.7), _LARGEST_STEP)
+        whole = bool(found[-1] >= farthest)
     return _branch(network, case, points, whole=whole)
 
 
@@ -638,41 +658,73 @@ def _tangent(
 
 
 def _corrected(
-    network: Network, here: FloatArray, tangent: FloatArray, step: float, case: IntArray
+    network: Network,
+    here: FloatArray,
+    tangent: FloatArray,
+    step: float,
+    case: IntArray,
+    settled: float = 0.0,
 ) -> tuple[FloatArray | None, int]:
-    """Return the point of the branch a step away, and the trials; None where none is reached."""
+    """Return the point of the branch a step away, and the trials; None where none is reached.
+
+    It is accepted by its backward error, or where the last change of Newton's method, which
+    the next would square, is no larger than ``settled``.
+    """
     s = network.substances
     z = here + step * tangent
     there = network.possible[case[0]]
     z[:s] = np.maximum(z[:s], _FLOOR * here[:s]) * there
-    for trial in range(1, 9):
+    for trial in range(1, _TRIALS):
         at, wide = _bordered(network, z, case)
         off = float(tangent @ (z - here)) - step
         if float(at.error[0]) <= ACCEPTED and abs(off) <= 1e-6 * max(step, 1e-3):
-            moved = z - here
-            along = float(moved @ tangent)
-            # A point that lies far aside belongs to another part of the branch.
-            if along > 0.7 * float(np.sqrt((moved**2).sum())):
-                return z, trial
-            return None, trial
+            return _onward(here, tangent, z), trial
         matrix = np.concatenate([wide, tangent[None]])
         right = np.append(at.residual[0], off)
         change = _solved(matrix[None], -right[None])[0]
         new = z + change
         new[:s] = np.maximum(new[:s], _FLOOR * z[:s]) * there
-        if not np.isfinite(new).all() or float(np.abs(change[:-1]).max()) > 2.0:
-            return None, trial
+        if not np.isfinite(new).all() or float(np.abs(change[:-1]).max()) > _FARTHEST_OFF:
+            break
+        moved = float(np.abs(new - z).max())
         z = new
-    return None, 9
+        if moved <= settled and float(np.abs(change).max()) <= settled:
+            return _onward(here, tangent, z), trial
+    return None, _TRIALS
+
+
+def _onward(here: FloatArray, tangent: FloatArray, z: FloatArray) -> FloatArray | None:
+    """Return a point, unless it lies so far aside that it belongs to another part of a branch."""
+    moved = z - here
+    along = float(moved @ tangent)
+    return z if along > 0.7 * float(np.sqrt((moved**2).sum())) else None
 
 
 def at_volume(network: Network, case: int, branch: Branch) -> FloatArray:
     """Return where a branch passes the volume of its case, shape (k, n), scaled."""
-    points = crossings(network, case, branch, lambda ln_v, _y: ln_v, 0.0)
-    rows: IntArray = np.full(len(points), case)
-    # Along the branch the volume is met to a few digits less than at a volume that is held.
-    y, errors = newton(network, points[:, :-1], np.zeros(len(points)), rows)
-    return y[errors <= ACCEPTED]
+    points = network.points_of(branch, case)
+    ln_v = points[:, -1]
+    after: IntArray = np.flatnonzero((ln_v[1:] == 0) | (ln_v[1:] * ln_v[:-1] < 0)) + 1
+    if not after.size:
+        return np.zeros((0, network.size))
+    share = (ln_v[after - 1] / (ln_v[after - 1] - ln_v[after]))[:, None]
+    start = points[after - 1] + share * (points[after] - points[after - 1])
+    rows: IntArray = np.full(len(after), case)
+    y, errors = newton(network, start[:, :-1], np.zeros(len(after)), rows)
+    span = np.abs(points[after] - points[after - 1]).max(axis=1)
+    found = []
+    for k in range(len(after)):
+        if errors[k] <= ACCEPTED and np.abs(y[k] - start[k, :-1]).max() <= span[k]:
+            found.append(y[k])
+            continue
+        # Between its two points the branch bends away: step by step, then.
+        point = _between(
+            network, points[after[k] - 1], points[after[k]], rows[:1], lambda v, _y: v, 0.0
+        )
+        if point is not None:
+            one, error = newton(network, point[None, :-1], np.zeros(1), rows[:1])
+            found += [one[0]] if error[0] <= ACCEPTED else []
+    return np.array(found).reshape(len(found), network.size)
 
 
 def crossings(
@@ -700,15 +752,11 @@ def crossings(
         Scaled states, and last the logarithm of the volume over that of the case.
     """
     one: IntArray = np.array([case])
-    ln_v = branch.ln_volume - np.log(network.balance.volume[case])
-    columns = [branch.flows / network.fed[case]]
-    if branch.temperature is not None:
-        columns.append(branch.temperature[:, None] / _KELVINS)
-    states = np.concatenate([*columns, ln_v[:, None]], axis=1)
-    values = quantity(ln_v, states[:, :-1]) - target
+    states = network.points_of(branch, case)
+    values = quantity(states[:, -1], states[:, :-1]) - target
     found: list[FloatArray] = []
     for i in np.flatnonzero((values[1:] == 0) | (values[1:] * values[:-1] < 0)).tolist():
-        point = _between(network, states[i], states[i + 1], values[i], one, quantity, target)
+        point = _between(network, states[i], states[i + 1], one, quantity, target)
         if point is not None:
             found.append(point)
     return np.array(found).reshape(len(found), network.size + 1)
@@ -718,34 +766,26 @@ def _between(
     network: Network,
     before: FloatArray,
     after: FloatArray,
-    first: float,
     case: IntArray,
     quantity: Callable[[FloatArray, FloatArray], FloatArray],
     target: float,
 ) -> FloatArray | None:
-    """Halve and interpolate the way between two points, each trial brought back to the branch."""
+    """Look for the target between two points of a branch, each trial brought back to it."""
     chord = after - before
     length = float(np.sqrt((chord**2).sum()))
-    if length == 0:
-        return before
     tangent = chord / length
-    low, high, value_low = 0.0, length, first
-    value_high = float(quantity(after[-1:], after[None, :-1])[0]) - target
-    best: FloatArray | None = None
-    for k in range(60):
-        share = value_low / (value_low - value_high) if value_low != value_high else 0.5
-        if k % 3 == 2 or not 0.0 < share < 1.0:
-            share = 0.5
-        at = low + share * (high - low)
-        point, _ = _corrected(network, before, tangent, at, case) if at > 0 else (before, 0)
+    best: dict[float, FloatArray] = {}
+
+    def excess(at: float) -> float:
+        point, _ = _corrected(network, before, tangent, at, case)
         if point is None:
-            return best
-        best = point
-        value = float(quantity(point[-1:], point[None, :-1])[0]) - target
-        if value == 0 or high - low <= 4e-15 * length:
-            break
-        if (value > 0) == (value_low > 0):
-            low, value_low = at, value
-        else:
-            high, value_high = at, value
-    return best
+            raise ArithmeticError
+        best[at] = point
+        return float(quantity(point[-1:], point[None, :-1])[0]) - target
+
+    # Points of a branch that is followed are good to a few digits less than those here.
+    first, last = 1e-9 * length, length * (1 + 1e-9)
+    try:
+        return best[float(brentq(excess, first, last, xtol=1e-15 * length, rtol=1e-15))]
+    except (ArithmeticError, ValueError, KeyError):
+        return None

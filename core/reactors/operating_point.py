@@ -36,7 +36,7 @@ from core.reactors.problem import (
     Train,
 )
 from core.reactors.rating import rating
-from core.reactors.reacted import OperatingPoints, Optimum, Reacted, Solution
+from core.reactors.reacted import OperatingPoints, Optimum, Reacted, Solution, SteadyState
 from core.reactors.scanning import bracketed
 from core.reactors.solving import basis_of, fed_of, run
 from core.reactors.steady_states import steady_states
@@ -46,6 +46,8 @@ from core.reactors.trains import end_of_train, gap_at
 from core.streams.stream import Stream
 
 TRIES = 41
+_ANEW = 5
+"""Tries after which the states of a network are looked for anew, and not from their neighbours."""
 _CLOSE = 1e-5
 """Of a bracket, to which an extreme is found; its height is then good to ten digits."""
 _FLAT = 1e-9
@@ -151,6 +153,7 @@ class _Search:
     work: Work
     refusal: Refused | None = None
     known: dict[float, _Try | None] = field(default_factory=dict)
+    states: dict[float, tuple[SteadyState, ...]] = field(default_factory=dict)
 
     def at(self, value: float) -> _Try:
         """Return what comes out at a value; a refusal is kept too."""
@@ -170,7 +173,7 @@ class _Search:
 
     def _tried(self, value: float) -> _Try:
         problem = with_free(self.problem, self.free, value)
-        outlets = self._outlets(problem)
+        outlets = self._outlets(problem, value)
         gaps = tuple(self._gap(problem, stream, fed) for stream, fed in outlets)
         key = problem.key
         conversions = tuple(fed.consumed / float(fed.flows[key]) for _, fed in outlets)
@@ -181,13 +184,14 @@ class _Search:
             return float(stream.flows[self.target.substance])
         return gap_at(problem, stream, fed, self.target)
 
-    def _outlets(self, problem: ReactorProblem) -> list[tuple[Stream, Fed]]:
+    def _outlets(self, problem: ReactorProblem, value: float) -> list[tuple[Stream, Fed]]:
         reactor, key = problem.reactor, problem.key
         if isinstance(reactor, Train):
             return [end_of_train(problem, self.work)]
         if isinstance(reactor, StirredTank) and reactor.size is not None:
-            found, _ = steady_states(problem, reactor.size)
-            self.work.take(50 * len(found.states))
+            found, _ = steady_states(problem, reactor.size, near=self._near(value))
+            self.work.take(found.evaluations)
+            self.states[value] = found.states
             streams = [state.outlet for state in found.states]
         else:
             streams = [outlet_of(run(problem, fed_of(problem), self.work))]
@@ -195,6 +199,12 @@ class _Search:
         if isinstance(reactor, Batch) and reactor.fed is not None and reactor.size is not None:
             fed = fed + reactor.fed.stream.flows * min(reactor.size.value, reactor.fed.until)
         return [(s, Fed(fed, float(fed[key] - s.flows[key]))) for s in streams]
+
+    def _near(self, value: float) -> tuple[SteadyState, ...]:
+        """Return the steady states at the closest value; while the range is tried not always."""
+        if len(self.states) < TRIES and len(self.states) % _ANEW == 0:
+            return ()
+        return self.states[min(self.states, key=lambda known: abs(known - value))]
 
     def answer(self, points: int) -> OperatingPoints:
         low, high = self.between

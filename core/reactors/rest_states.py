@@ -179,7 +179,7 @@ class _OneReaction:
             for bound in (heat.coldest, heat.hottest):
                 t = np.full(n, bound)
                 left, _, _ = self.balance.imbalance(t, nothing, self.balance.volume, rows)
-                enthalpy = self.balance.heats.on_arrays(rows)(t, np.zeros((0, n)))[1]
+                enthalpy = self.balance.on(self.balance.heats, rows)(t, np.zeros((0, n)))[1]
                 with np.errstate(all="ignore"):
                     extent = -left / enthalpy
                     inside = moves & (extent > self.first) & (extent < self.last)
@@ -307,7 +307,7 @@ class _OneReaction:
         elif self.balance.heat is not None:
             assert self.held is not None
             y.append(self.held[case])
-        rate = self.balance.rates.on_arrays(case)(x, y)[0]
+        rate = self.balance.on(self.balance.rates, case)(x, y)[0]
         found: FloatArray = rate * self.balance.volume[case] - self.extent(x, case)
         return np.broadcast_to(found, x.shape)
 
@@ -330,7 +330,7 @@ class _OneReaction:
         elif self.balance.heat is not None:
             assert self.held is not None
             y.append(self.held)
-        found: FloatArray = self.balance.rates.on_arrays(rows)(np.zeros(n), y)[0]
+        found: FloatArray = self.balance.on(self.balance.rates, rows)(np.zeros(n), y)[0]
         return np.broadcast_to(found, (n,))
 
     def cut(self, signs: IntArray) -> BoolArray:
@@ -384,7 +384,7 @@ class _OneReaction:
     def _resting(self, flows: FloatArray, t: FloatArray | None, case: IntArray) -> BoolArray:
         """Whether the rate itself is zero there."""
         y = [*flows] if t is None else [*flows, t]
-        rate = self.balance.rates.on_arrays(case)(np.zeros(len(case)), y)[0]
+        rate = self.balance.on(self.balance.rates, case)(np.zeros(len(case)), y)[0]
         return np.broadcast_to(np.asarray(rate) == 0, case.shape)
 
 

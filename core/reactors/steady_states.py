@@ -26,6 +26,7 @@ from core.reactors.network_states import (
     follow,
     more_states,
     solve_network,
+    states_from,
 )
 from core.reactors.problem import (
     Adiabatic,
@@ -46,6 +47,8 @@ CURVE_POINTS = 121
 _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
+_AN_ENCLOSURE = 10
+"""Evaluations that one box takes as much time as."""
 _MORE_STARTS = 12
 """From which states beside the branch are looked for."""
 
@@ -118,7 +121,12 @@ def _tank_heat(problem: ReactorProblem, balances: Balances) -> TankHeat:
 
 
 def steady_states(
-    problem: ReactorProblem, size: Size, feed: Stream | None = None, *, curves: bool = False
+    problem: ReactorProblem,
+    size: Size,
+    feed: Stream | None = None,
+    *,
+    curves: bool = False,
+    near: Sequence[SteadyState] = (),
 ) -> tuple[SteadyStates, tuple[Note, ...]]:
     """Return the steady states of one tank, and what there is to say of them.
 
@@ -131,6 +139,9 @@ def steady_states(
         What enters, where it is not the problem's own feed.
     curves : bool
         Whether to give what one reaction gives off and what leaves over temperature.
+    near : sequence of SteadyState
+        Of a tank that differs little. Those of a network are looked for from there, and
+        along their branch only where some have gone.
 
     Returns
     -------
@@ -149,8 +160,10 @@ def steady_states(
     balance = tank_balance(problem, feed, size)
     _check_unreacted(balance)
     if len(balance.nu) > 1:
-        states = _searched(problem, feed, balance)
-        return SteadyStates(states, complete=False, described=_described(states)), ()
+        network = Network(balance)
+        states = _searched(problem, feed, network, near)
+        told = SteadyStates(states, False, _described(states), evaluations=network.evaluations)
+        return told, ()
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
     if not len(found.case):
@@ -160,21 +173,29 @@ def steady_states(
     heat_curves = None
     if curves and found.temperature is not None:
         heat_curves = curves_of(balance, found.temperature)
-    answer = SteadyStates(states, complete, _described(states), heat_curves)
+    evaluations = _AN_ENCLOSURE * int(found.boxes[0])
+    answer = SteadyStates(states, complete, _described(states), heat_curves, evaluations)
     return answer, tuple(_notes(balance, found))
 
 
 def _searched(
-    problem: ReactorProblem, feed: Stream, balance: TankBalance
+    problem: ReactorProblem, feed: Stream, network: Network, near: Sequence[SteadyState]
 ) -> tuple[SteadyState, ...]:
     """Return the states of a network that are found."""
-    network = Network(balance)
-    one = solve_network(balance, branch=False)
+    if near:
+        flows = np.array([state.outlet.flows for state in near]).T
+        t = np.array([state.outlet.temperature for state in near], dtype=float)
+        starts = network.scaled(flows, t if network.heated else None)
+        found = [states_from(network, 0, starts), more_states(network, 0, _MORE_STARTS)]
+        states = distinct(network, np.concatenate(found), 0)
+        if len(states) >= len(near):
+            return _states_of(problem, feed, network, states, np.zeros(len(states)))
     branch = follow(network, 0)
-    found = [at_volume(network, 0, branch)]
-    if one.accepted[0]:
-        found.append(network.scaled(one.flows, one.temperature))
-    found.append(more_states(network, 0, _MORE_STARTS))
+    found = [at_volume(network, 0, branch), more_states(network, 0, _MORE_STARTS)]
+    if not branch.whole or not len(found[0]):
+        one = solve_network(network.balance, branch=False)
+        if one.accepted[0]:
+            found.append(network.scaled(one.flows, one.temperature))
     states = distinct(network, np.concatenate(found), 0)
     if not len(states):
         raise _not_found()

@@ -134,6 +134,19 @@ class TankBalance:
         """N, the number of cases."""
         return len(self.feed)
 
+    def on(self, line: StraightLine, case: IntArray) -> Callable[..., list[Any]]:
+        """Return a recorded calculation on arrays of some cases; of one case it is kept."""
+        if self.size > 1:
+            return line.on_arrays(case)
+        found = self._kept.get((id(line.tape), line.outputs))
+        if found is None:
+            found = self._kept[id(line.tape), line.outputs] = line.on_arrays()
+        return found
+
+    @cached_property
+    def _kept(self) -> dict[tuple[int, tuple[int, ...]], Callable[..., list[Any]]]:
+        return {}
+
     @cached_property
     def heats(self) -> StraightLine:
         """Of (T,): heat to bring the feed to T, W, and dH of each reaction, J/mol of extent."""
@@ -173,7 +186,7 @@ class TankBalance:
         self, t: FloatArray, case: IntArray
     ) -> tuple[Number, list[Number], Number, list[Number]]:
         """Return ``heats`` and ``capacities`` at temperatures, shape (m,), at once."""
-        gained, *rest = self._both.on_arrays(case)(t, np.zeros((0, len(t))))
+        gained, *rest = self.on(self._both, case)(t, np.zeros((0, len(t))))
         r = len(self.nu)
         return gained, rest[:r], rest[r], rest[r + 1 :]
 
@@ -274,7 +287,7 @@ class TankBalance:
         m = len(case)
         changes = np.asarray(self.nu.any(axis=0))
         state = flows if temperature is None else np.concatenate([flows, temperature[None]])
-        values = self.slopes.on_arrays(case)(np.zeros(m), state)
+        values = self.on(self.slopes, case)(np.zeros(m), state)
         table = rows_of(values, m).reshape(r, len(values) // r, m)
         present = np.where(changes[:, None], table[:, :s], 0.0)
         by_extent = np.einsum("jim,ki->mjk", present, self.nu) * volume[:, None, None]
@@ -283,11 +296,11 @@ class TankBalance:
             return Departures(space_time, by_extent)
         heat = self.heat
         assert heat is not None
-        rates = self.rates.on_arrays(case)(np.zeros(m), state)
+        rates = self.on(self.rates, case)(np.zeros(m), state)
         extents = rows_of(rates, m) * volume
         _, slope, _ = self.imbalance(temperature, extents, volume, case)
         stored = slope - heat.conductance(volume, case)
-        enthalpies = self.heats.on_arrays(case)(temperature, np.zeros((0, m)))[1:]
+        enthalpies = self.on(self.heats, case)(temperature, np.zeros((0, m)))[1:]
         warming = -rows_of(enthalpies, m).T / stored[:, None]
         by_t = (table[:, s] * volume).T
         return Departures(space_time, by_extent, by_t, warming, slope / stored)

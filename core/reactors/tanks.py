@@ -99,7 +99,7 @@ def through_tanks(
                 )
             )
         at, feed = Fed(at.flows, at_outlet), tank.outlet
-        work.take(len(tank.states.states))
+        work.take(tank.states.evaluations)
     assert told is not None
     balances = Balances(replace(last, feed=problem.feed), basis, problem.feed)
     observer = Observer(balances, before)
