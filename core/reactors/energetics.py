@@ -46,7 +46,7 @@ from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
 from core.thermochemistry.heat_balance import adiabatic_temperature
 from core.thermochemistry.known_heats import KnownHeats, not_known
-from core.thermochemistry.reaction_properties import extrapolations
+from core.thermochemistry.reaction_properties import contradictions, extrapolations
 
 WORTH_A_CAUTION = 50.0
 """K of adiabatic rise at complete conversion. Below about 50 K, and without gas let off, a runaway
@@ -161,6 +161,7 @@ class _Finder:
         # A heat stated at this temperature needs no properties, and there may be none.
         self.properties = tuple(p for p in known.properties if p is not None)
         reacting = () if known.of_reacting is None else known.of_reacting[0]
+        self.notes += contradictions(self.properties)
         self.notes += extrapolations(reacting, np.array(t), ("feed", "temperature"))
         self._spread(known, each)
         if self.feed.phase == "liquid":

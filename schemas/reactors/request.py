@@ -11,7 +11,7 @@ from marshmallow import fields
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.problem import ReactorProblem
+from core.reactors.problem import PackedBed, Reactor, ReactorProblem
 from core.streams.stream import StreamPhase
 from core.thermochemistry.known_heats import known_heats
 from schemas.edge import EdgeMap, Json, RequestReader
@@ -117,7 +117,6 @@ def read_asked(
     known = read_feed(request["feed"], "/feed", reader, reactions, key, models)
     stated = read_heats(request["reactions"], reader, reactions)
     phase: StreamPhase = request["feed"].get("phase", "gas")
-    laws, constants = _read_rates(request, reader, reactions, phase)
     if known is not None and known.per_mole_of_key:
         reader.fault(
             "field-needed",
@@ -131,6 +130,7 @@ def read_asked(
     at = ReactorReading(reader, reactions, key, models, feed, size_asked)
     how = read_thermal(request.get("thermal", {"mode": "isothermal"}), "/thermal", ("thermal",), at)
     built = read_reactor(request["reactor"], "/reactor", ("reactor",), at, how)
+    laws, constants = _read_rates(request, reader, reactions, phase, built)
     limit = at.quantity(request, "temperature_limit", "", (), "temperature")
     reader.at(("reactions",), "/reactions")
     if len(reader.faults) > kept or feed is None or built is None or how is None:
@@ -157,9 +157,19 @@ def read_asked(
 
 
 def _read_rates(
-    request: Json, reader: RequestReader, reactions: ReactionSet, phase: StreamPhase
+    request: Json,
+    reader: RequestReader,
+    reactions: ReactionSet,
+    phase: StreamPhase,
+    reactor: Reactor | None,
 ) -> tuple[list[RateLaw | None], tuple[EquilibriumConstant | None, ...]]:
-    """Return the rate law of each reaction, None after a fault, and its constant where stated."""
+    """Return the rate law of each reaction, None after a fault, and its constant where stated.
+
+    What a bed says of its void fraction and density holds for the pellets in it too.
+    """
+    void = reactor.void_fraction if isinstance(reactor, PackedBed) else None
+    bulk = reactor.bulk_density if isinstance(reactor, PackedBed) else None
+    density = None if void is None or bulk is None else bulk / (1.0 - void)
     laws: list[RateLaw | None] = []
     constants: list[EquilibriumConstant | None] = []
     for j, said in enumerate(request["reactions"]):
@@ -172,7 +182,16 @@ def _read_rates(
                 " 'equation' and 'rate'",
             )
             continue
-        law = read_rate(said, pointer, reader, reactions, phase, j)
+        law = read_rate(
+            said,
+            pointer,
+            reader,
+            reactions,
+            phase,
+            j,
+            particle_density=density,
+            void_fraction=void,
+        )
         laws.append(law)
         constants.append(_constant_of(said, law, reader, reactions, j, phase))
     return laws, tuple(constants)

@@ -3,6 +3,7 @@
 import pytest
 from numpy.testing import assert_allclose
 
+from schemas.examples import EXAMPLES
 from tests.support import assert_refused, changed, post, result, value
 
 SHIFT = {
@@ -206,3 +207,31 @@ def test_a_constant_of_one_temperature_has_no_approach(client):
     answer = result(client, "volume", changed(SHIFT, reactions__0__equilibrium_constant=20.0))
     assert set(answer["equilibrium"]) == {"at_outlet_temperature"}
     assert answer["heat"]["adiabatic_rise"]["value"] > 0
+
+
+def test_data_that_contradict_the_tables_are_told_by_a_reactor_too(client):
+    shift = next(e for e in EXAMPLES if e.name == "low-temperature-shift-in-plug-flow").request
+    told = {
+        note["code"]: note
+        for note in post(
+            client,
+            "volume",
+            changed(
+                shift, target__conversion=0.5, species={"CO": {"heat_capacity": "45 J/(mol K)"}}
+            ),
+        ).get_json()["notes"]
+    }
+    assert told["stated-data-contradict-tables"]["pointer"] == "/species/CO/heat_capacity"
+
+
+def test_a_bed_tells_its_pellets_what_is_between_them(client):
+    pellets = next(e for e in EXAMPLES if e.name == "isomerisation-in-pellets").request
+    law = pellets["reactions"][0]["rate"]
+    stated = {k: v for k, v in law["effectiveness"].items() if k != "void_fraction"}
+    bed = {"kind": "packed-bed", "void_fraction": law["effectiveness"].get("void_fraction", 0.4)}
+    asked = changed(pellets, reactions__0__rate__effectiveness=stated, reactor=bed)
+    told = result(client, "volume", asked)
+    whole = changed(pellets, reactor=bed)
+    assert_allclose(
+        value(told["volume"]), value(result(client, "volume", whole)["volume"]), rtol=1e-12
+    )
