@@ -53,6 +53,7 @@ _FIRST_FEEDBACK = 0.05  # of what flows, that reactions started by it give back 
 _FARTHEST = float(np.log(1e3))  # beyond the volume asked for
 _FIRST_STEP, _LARGEST_STEP, _SMALLEST_STEP = 0.05, 0.4, 1e-9
 _FOLLOWED = 1e-6  # of a change, whose square is no matter while the branch is followed
+_ROUGHLY = 1e-4  # of a backward error before such a change
 _TRIALS = 9
 _FARTHEST_OFF = 2.0  # that a correction may lead
 _SAME = 1e-6  # of two states, that are one
@@ -591,6 +592,17 @@ def follow(
     most_points : int
         Of the branch, at which to give up.
     """
+    for settled in (_FOLLOWED, 0.0):
+        # A point that is good to a few digits less can lead astray where amounts are scarce.
+        branch = _followed(network, case, farthest, most_points, settled)
+        if branch.whole:
+            break
+    return branch
+
+
+def _followed(
+    network: Network, case: int, farthest: float, most_points: int, settled: float
+) -> Branch:
     one: IntArray = np.array([case])
     at = network.evaluate(network.start[one], np.zeros(1), one)
     s0 = min(_FIRST, _ln_over(_FIRST_SHARE, at.along), _ln_over(_FIRST_FEEDBACK, at.feedback))
@@ -609,7 +621,7 @@ def follow(
             break
         found = None
         while step >= _SMALLEST_STEP:
-            found, trials = _corrected(network, here, tangent, step, one, settled=_FOLLOWED)
+            found, trials = _corrected(network, here, tangent, step, one, settled)
             if found is not None:
                 break
             step *= 0.4
@@ -686,9 +698,10 @@ def _corrected(
         new[:s] = np.maximum(new[:s], _FLOOR * z[:s]) * there
         if not np.isfinite(new).all() or float(np.abs(change[:-1]).max()) > _FARTHEST_OFF:
             break
-        moved = float(np.abs(new - z).max())
+        # Changes of what is scarce are small in any case: its own balance tells.
+        small = float(np.abs(change).max()) <= settled and float(at.error[0]) <= _ROUGHLY
         z = new
-        if moved <= settled and float(np.abs(change).max()) <= settled:
+        if small:
             return _onward(here, tangent, z), trial
     return None, _TRIALS
 
