@@ -226,6 +226,11 @@ NOTES: dict[str, Entry] = {
         "Search that proves nothing",
         "The steady states are those that a search found; there may be others.",
     ),
+    "exchanger-works-backwards": Entry(
+        "Cooler that heats, or heater that cools",
+        "The temperature stated behind a cooler is above that of what enters it, or behind a heater"
+        " below. Check it, and the stages before.",
+    ),
     "temperature-limit-exceeded": Entry(
         "Temperature limit exceeded",
         "Somewhere the reactor is hotter than the limit stated in 'temperature_limit'. Runaway,"

@@ -339,7 +339,7 @@ class _RateReader:
         id_ = self.document.get("id", "r1") if self.reaction is None else self.reaction.id
         self.subject: Subject = ("reactions", id_, "rate")
         self.reader.at(self.subject, self.place)
-        for name in ("driving", "activity", "effectiveness"):
+        for name in ("driving", "per", "activity", "effectiveness"):
             self.reader.at((*self.subject, name), child(self.place, name))
 
     def read(self) -> RateLaw | None:

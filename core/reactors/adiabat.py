@@ -89,6 +89,13 @@ class Adiabat:
         return np.array(values) - self.held
 
     @cached_property
+    def joints(self) -> tuple[float, ...]:
+        """Temperatures where a heat capacity is bent, K."""
+        pieces = [piece for cp in self._capacities for piece in cp.pieces]
+        ends = {end for piece in pieces for end in (piece.lowest, piece.highest)}
+        return () if self._constants is not None else tuple(sorted(ends))
+
+    @cached_property
     def _flow(self) -> tuple[FloatArray, float]:
         """Heat capacity of the feed, shape (N,), and its change with X, of constants."""
         constants = self._constants
@@ -207,10 +214,8 @@ class Adiabat:
         for node, weight in zip(_NODES, _WEIGHTS, strict=True):
             mean = mean + weight * self._sum(_heat_capacity, end + node * far, case, x)
         close = np.abs(far) < _NEAR
-        for cp in self._capacities:
-            for piece in cp.pieces:
-                for joint in (piece.lowest, piece.highest):
-                    close = close & (np.abs(joint - end) > _NEAR)
+        for joint in self.joints:
+            close = close & (np.abs(joint - end) > _NEAR)
         return np.where(close, -short * heat / mean, far)
 
     def furthest(self, ahead: FloatArray) -> tuple[FloatArray, BoolArray]:

@@ -8,6 +8,7 @@ size, the variable is (1 - X/X_limit) to the power that makes it smooth.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -276,36 +277,57 @@ def _with_kinks(path: ReactionPath, u: FloatArray) -> tuple[FloatArray, IndexArr
 
 
 def kinks_of(path: ReactionPath, end: FloatArray) -> FloatArray | None:
-    """Return where floors bend the integrand, u before ``end``, shape (N, k); None if nowhere.
+    """Return where the integrand is bent, u before ``end``, shape (N, k); None if nowhere.
 
-    A floor bends it where it takes hold: a panel must end there. 0 where it does not.
+    A floor bends it where it takes hold, and a heat capacity where one piece of it
+    gives way to the next: a panel must end there. 0 where it does not.
     """
     terms = [term for hindrance in path.hindrances for term in hindrance.terms]
     products = [path.rate, *terms] + ([] if path.opposing is None else [path.opposing])
     floored = [factor for product in products for factor in product.floored]
-    if not floored:
-        return None
     if path.adiabat is None:
-        return np.stack([_kink(path, factor) for factor in floored], axis=1)
-    return np.stack([_warm_kink(path, factor, end) for factor in floored], axis=1)
+        found = [_kink(path, factor) for factor in floored]
+    else:
+        found = [_floor_crossed(path, factor, end) for factor in floored]
+        found += [_temperature_crossed(path, joint, end) for joint in path.adiabat.joints]
+        found = [kink for kink in found if kink.any()]
+    return np.stack(found, axis=1) if found else None
 
 
-def _warm_kink(path: ReactionPath, factor: FlooredFactor, end: FloatArray) -> FloatArray:
+def _floor_crossed(path: ReactionPath, factor: FlooredFactor, end: FloatArray) -> FloatArray:
     """Return what :func:`_kink` does, where the temperature changes on the way."""
+    return _crossing(path, end, lambda place: path.ln_above_floor(factor, place))
 
-    def above(u: FloatArray, case: IndexArray) -> FloatArray:
-        return path.ln_above_floor(factor, Place.at(case, u[:, None]))[:, 0]
+
+def _temperature_crossed(path: ReactionPath, joint: float, end: FloatArray) -> FloatArray:
+    """Return u where the temperature is as given, K, shape (N,); 0 where it never is."""
+
+    def above(place: Place) -> FloatArray:
+        t = path.temperature_at(place)
+        assert t is not None
+        return t - joint
+
+    return _crossing(path, end, above)
+
+
+def _crossing(
+    path: ReactionPath, end: FloatArray, value: Callable[[Place], FloatArray]
+) -> FloatArray:
+    """Return u before ``end`` where something turns its sign, shape (N,); 0 where it does not."""
+
+    def at(u: FloatArray, case: IndexArray) -> FloatArray:
+        return value(Place.at(case, u[:, None]))[:, 0]
 
     every: IndexArray = np.arange(path.size)
     lower: FloatArray = np.full(path.size, 1e-12)
     upper = np.minimum(end, _LARGEST_U)
     with np.errstate(divide="ignore", invalid="ignore"):
-        crossing = (upper > lower) & (above(lower, every) * above(upper, every) < 0)
+        crossing = (upper > lower) & (at(lower, every) * at(upper, every) < 0)
     found = np.zeros(path.size)
     if crossing.any():
         some: IndexArray = np.flatnonzero(crossing)
         found[some] = find_root(
-            lambda u, i: above(u, some[i]),
+            lambda u, i: at(u, some[i]),
             lower[some],
             upper[some],
             subject=("target", "conversion"),

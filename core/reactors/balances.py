@@ -183,9 +183,15 @@ class Balances:
         """Rates of extent, mol/s per m3 of reactor, kg of catalyst (batch: per m3)."""
         return self.recorded(State.rates)
 
-    def recorded(self, calculation: Callable[[State], Sequence[Number]]) -> StraightLine:
-        """Return what follows from a state, as straight-line code of (x, state)."""
-        return record(lambda x, *y: calculation(State(self, y, x)), 1 + self.layout.size)
+    def recorded(
+        self, calculation: Callable[[State], Sequence[Number]], besides: int = 0
+    ) -> StraightLine:
+        """Return what follows from a state, as straight-line code of (x, state).
+
+        ``besides``: of so many numbers more, behind the state, that it does not hang on.
+        """
+        size = self.layout.size
+        return record(lambda x, *y: calculation(State(self, y[:size], x)), 1 + size + besides)
 
     def slopes_of(self, state: State) -> list[Number]:
         """Return d state/dx at a state."""

@@ -7,7 +7,13 @@ from collections.abc import Iterator
 from core.errors import Amount, Fact, Note
 from core.reactions.reaction_set import ReactionSet
 from core.reactors.problem import ReactorProblem
-from core.reactors.reacted import Accumulation, Reacted, ReactorProfile, SteadyStates
+from core.reactors.reacted import (
+    Accumulation,
+    Reacted,
+    ReactorProfile,
+    StageReached,
+    SteadyStates,
+)
 
 _NOT_ASSESSED = " Runaway, decomposition and relief are not assessed: follow local codes and"
 _NOT_ASSESSED += " licensed practice"
@@ -33,6 +39,12 @@ def cautions(problem: ReactorProblem, reacted: Reacted) -> Iterator[Note]:
     unproven = [id_ for id_, found in tanks if not found.complete]
     if unproven:
         yield _unproven(unproven)
+    for stage in reacted.stages:
+        if (
+            stage.duty is not None
+            and stage.duty * {"cool": 1.0, "heat": -1.0}.get(stage.kind, 0) > 0
+        ):
+            yield _backwards(stage)
     if reacted.accumulation is not None:
         yield _accumulated(problem.reactions, reacted.accumulation, limit)
 
@@ -50,6 +62,18 @@ def _hottest(reacted: Reacted) -> float | None:
 
 def _most(profile: ReactorProfile) -> float:
     return float("-inf") if profile.temperature is None else float(profile.temperature.max())
+
+
+def _backwards(stage: StageReached) -> Note:
+    does = "heats" if stage.kind == "cool" else "cools"
+    return Note(
+        "exchanger-works-backwards",
+        f"the stage {{stage}} is meant to {stage.kind} and {does}, to the temperature stated behind"
+        " it: check that temperature, and what the stages before it make of theirs",
+        "warning",
+        ("reactor", "stages", stage.id),
+        {"stage": stage.id},
+    )
 
 
 def _several(found: SteadyStates, id_: str) -> Iterator[Note]:

@@ -41,7 +41,7 @@ _POLYNOMIALS: FloatArray = np.asarray(legvander(_NODES, _ORDER - 1), dtype=float
 _SERIES: FloatArray = _POLYNOMIALS * _GAUSS[:, None] * (_DEGREES + 0.5)
 _WIDEST = 2.0  # of the first panel, in u
 _FURTHEST = 700.0  # u beyond which the rest of the way is no normal number
-_RESOLVED = 1e-12  # last coefficients of a series over its mean
+_RESOLVED = 2e-13  # last coefficients of a series over its mean
 _COARSE = 1e-9  # the same, where halving no longer helps because the rate itself is no better
 _NOTHING = 1e-18  # of the size so far: a panel that adds no more is passed as it is
 _MOST_HALVINGS = 60

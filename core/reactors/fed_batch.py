@@ -19,7 +19,7 @@ from core.reactors.reacted import Accumulation
 from core.reactors.telling import Course
 from core.thermochemistry.heat_balance import adiabatic_temperature
 
-_LOOKED_AT = 51
+_LOOKED_AT = 25
 """Times at which cooling might stop."""
 
 

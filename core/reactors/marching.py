@@ -241,7 +241,10 @@ class Marcher:
         """
         falling = isinstance(target, MaximumTarget)
         event = tuple(
-            Event(_first_of(self.observer.gap(target, leg).on_floats()), -1 if falling else 0)
+            Event(
+                _first_of(self.observer.gap(target, leg, besides=1).on_floats()),
+                -1 if falling else 0,
+            )
             for leg in self._legs
         )
 
@@ -615,14 +618,13 @@ def _beside_time(balances: Balances, flow: bool) -> Callable[[float, Sequence[fl
     def slopes(state: State) -> list[Number]:
         return [*balances.slopes_of(state), 1.0 / state.volume if flow else 0.0]
 
-    run = balances.recorded(slopes).on_floats()
-    return lambda at, state: run(at, state[:-1])
+    return balances.recorded(slopes, besides=1).on_floats()
 
 
 def _first_of(
     run: Callable[[float, Sequence[float]], list[float]],
 ) -> Callable[[float, Sequence[float]], float]:
-    return lambda at, state: run(at, state[:-1])[0]
+    return lambda at, state: run(at, state)[0]
 
 
 def _component(i: int) -> Callable[[float, Sequence[float]], float]:

@@ -89,11 +89,12 @@ class Observer:
         y : ndarray, shape (n, size of the layout)
         """
         balances, layout, n = self.balances, self.balances.layout, len(x)
+        flows = self._not_below_zero(y[:, : layout.substances])
+        y = np.concatenate([flows, y[:, layout.substances :]], axis=1)
         found = self._everything.on_arrays()(x, y.T)
         spread = [np.broadcast_to(np.asarray(v, dtype=float), n) for v in found]
         volume, z, held = spread[:3]
         feed = balances.feed
-        flows = self._not_below_zero(y[:, : layout.substances])
         start = State(balances, list(y[0]))
         t = y[:, layout.temperature] if layout.temperature is not None else start.temperature
         if feed.phase != "gas":
@@ -176,7 +177,9 @@ class Observer:
             liquid_volumetric_flow=liquid,
         )
 
-    def gap(self, target: Target, balances: Balances | None = None) -> StraightLine:
+    def gap(
+        self, target: Target, balances: Balances | None = None, besides: int = 0
+    ) -> StraightLine:
         """Return what is zero where a target is met: of (x, state).
 
         Parameters
@@ -184,6 +187,8 @@ class Observer:
         target : Target
         balances : Balances, optional
             Of a batch that is being fed, or has been.
+        besides : int
+            Numbers behind the state.
 
         Raises
         ------
@@ -191,7 +196,7 @@ class Observer:
             ``target-not-defined``: the quantity is not known here.
         """
         which = self.balances if balances is None else balances
-        return which.recorded(lambda state: [self._gap(target, state)])
+        return which.recorded(lambda state: [self._gap(target, state)], besides)
 
     def _gap(self, target: Target, state: State) -> Number:
         problem, feed = self._problem, self.balances.feed

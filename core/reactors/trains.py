@@ -222,7 +222,8 @@ def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int | None, wo
             stream, duty = heated(problem, at.stream, where, stage.duty), stage.duty
         before, after = at.stream.temperature, stream.temperature
         warmer = (after or 0.0) > (before or 0.0)
-        return _other(at, stage.id, "heat" if warmer else "cool", stream, at.fed, key, duty)
+        kind = stage.kind or ("heat" if warmer else "cool")
+        return _other(at, stage.id, kind, stream, at.fed, key, duty)
     assert isinstance(stage, SeparateStage)
     taken = at.stream.flows * stage.removed
     share = _share_kept(at.stream, taken)

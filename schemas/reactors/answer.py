@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
-from functools import partial
 from typing import Any
 
 import numpy as np
@@ -84,10 +83,10 @@ class ReactorHeatSchema(OpenSchema):
         text="By reaction as written, at the feed's temperature.", required=True
     )
     adiabatic_rise = number(
-        "What the conversion reached would bring without exchange of heat.", required=True
+        "What the conversion reached would bring without exchange of heat; not of a train."
     )
     adiabatic_rise_complete = number(
-        "What complete conversion of the limiting reactant would bring.", required=True
+        "What complete conversion of the limiting reactant would bring; not of a train."
     )
 
 
@@ -423,13 +422,14 @@ class ReactorWriter:
 
     def _heat(self, heat: ReactorHeat) -> Json:
         each = zip(self.ids, heat.enthalpies.tolist(), strict=True)
-        rise = partial(self.maybe, dimension="temperature_difference")
-        return {
+        told: Json = {
             "duty": self.maybe(heat.duty, "energy" if self.batch else "power"),
             "enthalpy_of_reaction": {id_: self.maybe(h, "molar_energy") for id_, h in each},
-            "adiabatic_rise": rise(heat.adiabatic_rise),
-            "adiabatic_rise_complete": rise(heat.adiabatic_rise_complete),
         }
+        if self.problem.reactor.kind != "train":
+            for name in ("adiabatic_rise", "adiabatic_rise_complete"):
+                told[name] = self.maybe(getattr(heat, name), "temperature_difference")
+        return told
 
     def _steady_states(self, told: Json, found: SteadyStates) -> None:
         told["steady_states"] = [self._steady_state(state) for state in found.states]
@@ -522,12 +522,13 @@ class ReactorWriter:
 
     def composition(self, reacted: Reacted) -> Table:
         """Return what goes in and comes out, a row for each substance."""
-        word, flow = self.words.flow, self.edge.scales[self.words.flow_dimension]
+        flow = self.edge.scales[self.words.flow_dimension]
         columns: dict[str, list[Any]] = {"substance": list(self.names)}
         units: dict[str, str] = {}
-        for side, stream in (("inlet", reacted.inlet), ("outlet", reacted.outlet)):
-            columns[f"{side} {word}"] = cells(stream.flows / flow.factor)
-            units[f"{side} {word}"] = flow.unit
+        into, out_of = ("charged", "at the end") if self.batch else ("inlet flow", "outlet flow")
+        for name, stream in ((into, reacted.inlet), (out_of, reacted.outlet)):
+            columns[name] = cells(stream.flows / flow.factor)
+            units[name] = flow.unit
         out = reacted.outlet
         if not out.solvent_unknown:
             inside = np.where(out.in_phase, out.flows, np.nan)

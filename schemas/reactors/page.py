@@ -116,9 +116,12 @@ class ReactorPage:
 
     def _temperatures(self) -> Iterator[tuple[str, Json | None]]:
         result = self.result
-        for side in ("inlet", "outlet"):
+        names = {"inlet": "inlet temperature", "outlet": "outlet temperature"}
+        if self.writer.batch:
+            names = {"inlet": "temperature of the charge", "outlet": "temperature at the end"}
+        for side, words in names.items():
             if "temperature" in result[side]:
-                yield f"{side} temperature", result[side]["temperature"]
+                yield words, result[side]["temperature"]
         if "hottest" in result:
             yield "highest temperature", result["hottest"]["temperature"]
         if "utility_outlet_temperature" in result:
@@ -129,8 +132,9 @@ class ReactorPage:
         if heat is None:
             return
         yield "heat supplied (below zero: removed)", heat["duty"]
-        yield "adiabatic rise of this conversion", heat["adiabatic_rise"]
-        yield "adiabatic rise of complete conversion", heat["adiabatic_rise_complete"]
+        if "adiabatic_rise" in heat:
+            yield "adiabatic rise of this conversion", heat["adiabatic_rise"]
+            yield "adiabatic rise of complete conversion", heat["adiabatic_rise_complete"]
 
     def tables(self) -> Iterator[tuple[str, Table]]:
         """Yield the tables that are shown in full."""
@@ -210,7 +214,7 @@ class ReactorPage:
     def _reciprocal(self, table: Table) -> Plot | None:
         """Return 1/rate against conversion, whose area is the size; of one feed alone."""
         rates = table.columns.get("rate")
-        if rates is None or self.writer.problem.reactor.kind == "train":
+        if rates is None or getattr(self.writer.problem.reactor, "fed", None) is not None:
             return None
         inverse = [None if not r else 1 / r for r in rates]
         unit = spell([(table.units["rate"], -1)])
@@ -295,7 +299,6 @@ STAGE_COLUMNS = (
     ("outlet pressure", "outlet/pressure"),
 )
 POINT_COLUMNS = (
-    ("value", "value"),
     ("conversion", "conversion"),
     ("outlet temperature", "outlet/temperature"),
     ("highest temperature", "hottest/temperature"),
@@ -356,7 +359,8 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
     if len(pages) == 1:
         numbers = [(free, result["solutions"][0]["value"]), *first.numbers()]
     else:
-        tables.append(("Where the target is met", _rows(result["solutions"], POINT_COLUMNS)))
+        columns = ((free, "value"), *POINT_COLUMNS)
+        tables.append(("Where the target is met", _rows(result["solutions"], columns)))
     optimum = result.get("optimum")
     if optimum is not None:
         numbers.append((f"{free} of the largest conversion", optimum["value"]))

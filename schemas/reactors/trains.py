@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from typing import Literal
 
 import numpy as np
 from marshmallow import fields
@@ -203,8 +204,9 @@ def _read_exchanger(
             "state exactly one of 'to', the temperature behind it, and 'duty'",
         )
         return None
-    sign = -1.0 if said["kind"] == "cool" else 1.0
-    return TemperatureStage(said["id"], to, None if duty is None else sign * duty)
+    kind: Literal["cool", "heat"] = said["kind"]
+    sign = -1.0 if kind == "cool" else 1.0
+    return TemperatureStage(said["id"], to, None if duty is None else sign * duty, kind)
 
 
 def _read_separator(

@@ -577,6 +577,7 @@ case(
                 "id": name,
                 "equation": equation,
                 "rate": {
+                    "of": "A",
                     "per": "bed-volume",
                     "driving": "concentration",
                     "orders": {},

@@ -53,8 +53,8 @@ def test_a_request_of_the_readme_is_answered_as_shown(client, command, shown):
 
 
 def test_there_are_calls_to_check():
-    assert len(CALLS) == 10
-    assert sum(shown is not None for _, shown in CALLS) == 7
+    assert len(CALLS) == 12
+    assert sum(shown is not None for _, shown in CALLS) == 9
 
 
 def test_the_test_command_is_marked_for_continuous_integration():

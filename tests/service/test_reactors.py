@@ -286,3 +286,16 @@ def test_units_do_not_matter(client):
     one, two = (result(client, "rating", r) for r in (request, other))
     for path in ("conversion", "pressure_drop", "length"):
         assert_allclose(two[path]["value"], one[path]["value"], rtol=1e-8)
+
+
+def test_a_heater_that_cools_is_told(client):
+    request = changed(
+        asked("three-beds-with-absorption-between"),
+        reactor__stages__6__to="150 degC",
+    )
+    assert request["reactor"]["stages"][6]["kind"] == "heat"
+    answer = post(client, "rating", request).get_json()
+    (told,) = [n for n in answer["notes"] if n["code"] == "exchanger-works-backwards"]
+    assert told["pointer"] == "/reactor/stages/6"
+    assert answer["result"]["stages"][6]["kind"] == "heat"
+    assert answer["result"]["stages"][6]["duty"]["value"] < 0

@@ -202,6 +202,27 @@ def test_adiabatic():
     assert reached.target[-1] < 1
 
 
+def test_a_heat_capacity_that_is_bent_on_the_way():
+    reactions = reaction_set({"A": -1, "R": 1, "I": 0})
+    bent = HeatCapacity(
+        (
+            Piece(298.15, 560.0, Polynomial(0, (60.0, 0.1))),
+            Piece(560.0, 1500.0, Polynomial(0, (90.0, 0.02))),
+        )
+    )
+    known = heats(reactions, -60e3, {"A": bent, "R": bent, "I": 30.0})
+    feed = gas(reactions, {"A": 1.0, "I": 8.0}, 500.0)
+    law = replace(rate_law(reactions, {"A": 1}), constant=ConstantAt(500.0, 0.02, 90e3))
+    asked = pipe(law, feed, known=known, reactions=reactions)
+    x = np.array([0.1, 0.5, 0.9, 0.999])
+    sizes = size_reactor(replace(asked, target_conversion=x)).size
+    reached = conversion_in(asked, sizes)
+    again = advance(reached, reactions, 0).by_feed_volume[:, -1] * reached.key_flow
+    assert_allclose(again, sizes, rtol=1e-13)
+    alone = [float(conversion_in(asked, float(one)).target[0]) for one in sizes]
+    assert_allclose(alone, x, rtol=1e-11)
+
+
 @given(
     st.floats(0.0, 3.0),
     st.floats(-5.0, 3.0),
