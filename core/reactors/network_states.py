@@ -272,6 +272,11 @@ class Network:
         by_volume = heat.conductance_slope(volume, case) * volume
         along[:, -1] = -(given + by_volume * away * per)
 
+    def other_starts(self, case: int, starts: int, seed: int = 0) -> FloatArray:
+        """Return seeded compositions of one case to start from, scaled, shape (starts, n)."""
+        rows: IntArray = np.full(starts, case)
+        return _other_starts(self, rows, np.random.default_rng([seed, starts]))
+
     def stepped(self, y: FloatArray, step: FloatArray, case: IntArray) -> FloatArray:
         """Return states after a step, no flow below a share of itself."""
         s = self.substances
@@ -389,7 +394,9 @@ def pseudo_time(
     return y, errors
 
 
-def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -> Found:
+def solve_network(
+    balance: TankBalance, *, seed: int = 0, branch: bool = True, restarts: int = _RESTARTS
+) -> Found:
     """Return one state of rest of each of N cases, at its own volume.
 
     Parameters
@@ -399,9 +406,17 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
         Of the other starts.
     branch : bool
         Whether to follow the branch where nothing else succeeds.
+    restarts : int
+        Other starts.
     """
-    network = Network(balance)
-    n = balance.size
+    return solve(Network(balance), seed=seed, branch=branch, restarts=restarts)
+
+
+def solve(
+    network: Network, *, seed: int = 0, branch: bool = True, restarts: int = _RESTARTS
+) -> Found:
+    """Return what :func:`solve_network` returns, of balances at hand."""
+    n = network.balance.size
     y = network.start.copy()
     errors, stage = np.full(n, np.inf), np.zeros(n, dtype=np.intp)
     own = np.zeros(n)
@@ -416,7 +431,7 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
 
     rows: IntArray = np.arange(n)
     attempt(newton, network.start, rows, 1)
-    for trial in range(1 + _RESTARTS):
+    for trial in range(1 + restarts):
         rows = np.flatnonzero(errors > ACCEPTED)
         if not rows.size:
             break
@@ -476,10 +491,7 @@ def distinct(network: Network, states: FloatArray, case: int) -> FloatArray:
 
 def more_states(network: Network, case: int, starts: int, seed: int = 0) -> FloatArray:
     """Return the states that Newton's method comes to from seeded compositions, shape (k, n)."""
-    rows: IntArray = np.full(starts, case)
-    return states_from(
-        network, case, _other_starts(network, rows, np.random.default_rng([seed, starts]))
-    )
+    return states_from(network, case, network.other_starts(case, starts, seed))
 
 
 def states_from(network: Network, case: int, starts: FloatArray) -> FloatArray:
