@@ -53,6 +53,7 @@ _FIRST_FEEDBACK = 0.05  # of what flows, that reactions started by it give back 
 _FARTHEST = float(np.log(1e3))  # beyond the volume asked for
 _FIRST_STEP, _LARGEST_STEP, _SMALLEST_STEP = 0.05, 0.4, 1e-9
 _FOLLOWED = 1e-6  # of a change, whose square is no matter while the branch is followed
+_ROUGHLY = 1e-4  # of a backward error before such a change
 _TRIALS = 9
 _FARTHEST_OFF = 2.0  # that a correction may lead
 _SAME = 1e-6  # of two states, that are one
@@ -271,6 +272,11 @@ class Network:
         by_volume = heat.conductance_slope(volume, case) * volume
         along[:, -1] = -(given + by_volume * away * per)
 
+    def other_starts(self, case: int, starts: int, seed: int = 0) -> FloatArray:
+        """Return seeded compositions of one case to start from, scaled, shape (starts, n)."""
+        rows: IntArray = np.full(starts, case)
+        return _other_starts(self, rows, np.random.default_rng([seed, starts]))
+
     def stepped(self, y: FloatArray, step: FloatArray, case: IntArray) -> FloatArray:
         """Return states after a step, no flow below a share of itself."""
         s = self.substances
@@ -388,7 +394,9 @@ def pseudo_time(
     return y, errors
 
 
-def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -> Found:
+def solve_network(
+    balance: TankBalance, *, seed: int = 0, branch: bool = True, restarts: int = _RESTARTS
+) -> Found:
     """Return one state of rest of each of N cases, at its own volume.
 
     Parameters
@@ -398,9 +406,17 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
         Of the other starts.
     branch : bool
         Whether to follow the branch where nothing else succeeds.
+    restarts : int
+        Other starts.
     """
-    network = Network(balance)
-    n = balance.size
+    return solve(Network(balance), seed=seed, branch=branch, restarts=restarts)
+
+
+def solve(
+    network: Network, *, seed: int = 0, branch: bool = True, restarts: int = _RESTARTS
+) -> Found:
+    """Return what :func:`solve_network` returns, of balances at hand."""
+    n = network.balance.size
     y = network.start.copy()
     errors, stage = np.full(n, np.inf), np.zeros(n, dtype=np.intp)
     own = np.zeros(n)
@@ -415,7 +431,7 @@ def solve_network(balance: TankBalance, *, seed: int = 0, branch: bool = True) -
 
     rows: IntArray = np.arange(n)
     attempt(newton, network.start, rows, 1)
-    for trial in range(1 + _RESTARTS):
+    for trial in range(1 + restarts):
         rows = np.flatnonzero(errors > ACCEPTED)
         if not rows.size:
             break
@@ -475,10 +491,7 @@ def distinct(network: Network, states: FloatArray, case: int) -> FloatArray:
 
 def more_states(network: Network, case: int, starts: int, seed: int = 0) -> FloatArray:
     """Return the states that Newton's method comes to from seeded compositions, shape (k, n)."""
-    rows: IntArray = np.full(starts, case)
-    return states_from(
-        network, case, _other_starts(network, rows, np.random.default_rng([seed, starts]))
-    )
+    return states_from(network, case, network.other_starts(case, starts, seed))
 
 
 def states_from(network: Network, case: int, starts: FloatArray) -> FloatArray:
@@ -591,6 +604,17 @@ def follow(
     most_points : int
         Of the branch, at which to give up.
     """
+    for settled in (_FOLLOWED, 0.0):
+        # A point that is good to a few digits less can lead astray where amounts are scarce.
+        branch = _followed(network, case, farthest, most_points, settled)
+        if branch.whole:
+            break
+    return branch
+
+
+def _followed(
+    network: Network, case: int, farthest: float, most_points: int, settled: float
+) -> Branch:
     one: IntArray = np.array([case])
     at = network.evaluate(network.start[one], np.zeros(1), one)
     s0 = min(_FIRST, _ln_over(_FIRST_SHARE, at.along), _ln_over(_FIRST_FEEDBACK, at.feedback))
@@ -609,7 +633,7 @@ def follow(
             break
         found = None
         while step >= _SMALLEST_STEP:
-            found, trials = _corrected(network, here, tangent, step, one, settled=_FOLLOWED)
+            found, trials = _corrected(network, here, tangent, step, one, settled)
             if found is not None:
                 break
             step *= 0.4
@@ -686,9 +710,10 @@ def _corrected(
         new[:s] = np.maximum(new[:s], _FLOOR * z[:s]) * there
         if not np.isfinite(new).all() or float(np.abs(change[:-1]).max()) > _FARTHEST_OFF:
             break
-        moved = float(np.abs(new - z).max())
+        # Changes of what is scarce are small in any case: its own balance tells.
+        small = float(np.abs(change).max()) <= settled and float(at.error[0]) <= _ROUGHLY
         z = new
-        if moved <= settled and float(np.abs(change).max()) <= settled:
+        if small:
             return _onward(here, tangent, z), trial
     return None, _TRIALS
 

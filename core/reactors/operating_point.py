@@ -40,7 +40,7 @@ from core.reactors.reacted import OperatingPoints, Optimum, Reacted, Solution, S
 from core.reactors.scanning import bracketed
 from core.reactors.solving import basis_of, fed_of, run
 from core.reactors.steady_states import steady_states
-from core.reactors.tanks import through_tanks
+from core.reactors.tanks import check_budget, through_tanks
 from core.reactors.telling import outlet_of, tell
 from core.reactors.trains import end_of_train, gap_at
 from core.streams.stream import Stream
@@ -189,8 +189,10 @@ class _Search:
         if isinstance(reactor, Train):
             return [end_of_train(problem, self.work)]
         if isinstance(reactor, StirredTank) and reactor.size is not None:
-            found, _ = steady_states(problem, reactor.size, near=self._near(value))
-            self.work.take(found.evaluations)
+            check_budget(self.work)
+            found, _ = steady_states(
+                problem, reactor.size, near=self._near(value), spend=self.work.take
+            )
             self.states[value] = found.states
             streams = [state.outlet for state in found.states]
         else:

@@ -190,15 +190,12 @@ class SteadyStates:
     described : int
         Which of them the answer's outlet and conversion are.
     curves : HeatCurves or None
-    evaluations : int
-        Of the balances, that they took.
     """
 
     states: tuple[SteadyState, ...]
     complete: bool
     described: int = 0
     curves: HeatCurves | None = None
-    evaluations: int = 0
 
 
 @dataclass(frozen=True, eq=False)

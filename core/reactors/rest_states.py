@@ -105,7 +105,7 @@ def rest_states(
     one = _OneReaction(balance, temperature)
     with np.errstate(all="ignore"):
         found = all_roots(one, one.edges, most_boxes=most_boxes)
-        lower, upper = one.states_at_ends(found.signs)
+        lower, upper = one.states_at_ends(found.signs, found.case)
         case = np.concatenate([found.case, np.flatnonzero(lower), np.flatnonzero(upper)])
         u = np.concatenate(
             [
@@ -311,14 +311,22 @@ class _OneReaction:
         found: FloatArray = rate * self.balance.volume[case] - self.extent(x, case)
         return np.broadcast_to(found, x.shape)
 
-    def states_at_ends(self, signs: IntArray) -> tuple[BoolArray, BoolArray]:
-        """Return which cases rest at the lower and the upper end of their range."""
+    def states_at_ends(self, signs: IntArray, inside: IntArray) -> tuple[BoolArray, BoolArray]:
+        """Return which cases rest at the lower and the upper end of their range.
+
+        ``inside`` are the cases that have a state between: without any, an end at which
+        rounding hides the sign is one.
+        """
         low, high = self._range
         still = self._rate_of_feed() == 0
         whole_below, whole_above = (low == -_FAR) | (low == high), (high == _FAR)
         lower = whole_below & ((signs[:, 0] < 0) | ((self.first == 0) & still))
         upper = whole_above & ((signs[:, 1] > 0) | ((self.last == 0) & still))
         unmoved = self.first == self.last
+        none = ~(lower | upper | unmoved)
+        none[inside] = False
+        upper |= none & whole_above & (signs[:, 1] == 0) & (signs[:, 0] > 0)
+        lower |= none & ~upper & whole_below & (signs[:, 0] == 0) & (signs[:, 1] < 0)
         return lower | unmoved, upper & ~unmoved
 
     def _rate_of_feed(self) -> FloatArray:

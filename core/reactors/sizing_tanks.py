@@ -23,6 +23,7 @@ from core.reactors.problem import (
     TanksInSeries,
     Target,
 )
+from core.reactors.reacted import SteadyState
 from core.reactors.scanning import first_size
 from core.reactors.sizing import SizingProblem, size_reactor
 from core.reactors.steady_states import sizes_for
@@ -102,8 +103,10 @@ def _searched(
     if not isinstance(problem.reactor, TanksInSeries) or problem.reactor.number == 1:
         return _along_branch(problem, basis, before, work, target, scale)
 
+    known: dict[int, tuple[SteadyState, ...]] = {}
+
     def at(size: float) -> tuple[float, Course]:
-        course = through_tanks(problem, basis, before, work, size)
+        course = through_tanks(problem, basis, before, work, size, known=known)
         gap = course.observer.gap(target).on_floats()
         return gap(float(course.x[-1]), course.y[-1].tolist())[0], course
 

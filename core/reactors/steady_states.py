@@ -25,7 +25,7 @@ from core.reactors.network_states import (
     distinct,
     follow,
     more_states,
-    solve_network,
+    solve,
     states_from,
 )
 from core.reactors.problem import (
@@ -47,10 +47,11 @@ CURVE_POINTS = 121
 _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
-_AN_ENCLOSURE = 10
-"""Evaluations that one box takes as much time as."""
-_MORE_STARTS = 12
-"""From which states beside the branch are looked for."""
+_RESTARTS = 2  # of a network that its branch does not lead to
+_A_STATE, _AN_ENCLOSURE = 8, 10
+"""Evaluations of a march that one state of a network, or one box, counts as."""
+_MORE_STARTS, _FEW_STARTS = 12, 4
+"""From which states are looked for beside the branch, and beside those of a neighbour."""
 
 
 def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalance:
@@ -127,6 +128,7 @@ def steady_states(
     *,
     curves: bool = False,
     near: Sequence[SteadyState] = (),
+    spend: Callable[[int], None] = lambda _evaluations: None,
 ) -> tuple[SteadyStates, tuple[Note, ...]]:
     """Return the steady states of one tank, and what there is to say of them.
 
@@ -142,6 +144,8 @@ def steady_states(
     near : sequence of SteadyState
         Of a tank that differs little. Those of a network are looked for from there, and
         along their branch only where some have gone.
+    spend : callable, optional
+        Is told how many evaluations of a march the work amounts to, also where none is found.
 
     Returns
     -------
@@ -161,20 +165,22 @@ def steady_states(
     _check_unreacted(balance)
     if len(balance.nu) > 1:
         network = Network(balance)
-        states = _searched(problem, feed, network, near)
-        told = SteadyStates(states, False, _described(states), evaluations=network.evaluations)
-        return told, ()
+        try:
+            states = _searched(problem, feed, network, near)
+        finally:
+            spend(_A_STATE * network.evaluations)
+        return SteadyStates(states, complete=False, described=_described(states)), ()
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
+    spend(_AN_ENCLOSURE * int(found.boxes[0]))
     if not len(found.case):
-        raise _beyond(balance)
+        raise _not_found() if balance.heat is None else _beyond(balance)
     states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))
     complete = bool(found.complete[0]) and not bool(found.cut[0])
     heat_curves = None
     if curves and found.temperature is not None:
         heat_curves = curves_of(balance, found.temperature)
-    evaluations = _AN_ENCLOSURE * int(found.boxes[0])
-    answer = SteadyStates(states, complete, _described(states), heat_curves, evaluations)
+    answer = SteadyStates(states, complete, _described(states), heat_curves)
     return answer, tuple(_notes(balance, found))
 
 
@@ -186,14 +192,15 @@ def _searched(
         flows = np.array([state.outlet.flows for state in near]).T
         t = np.array([state.outlet.temperature for state in near], dtype=float)
         starts = network.scaled(flows, t if network.heated else None)
-        found = [states_from(network, 0, starts), more_states(network, 0, _MORE_STARTS)]
-        states = distinct(network, np.concatenate(found), 0)
+        others = network.other_starts(0, _FEW_STARTS)
+        both = states_from(network, 0, np.concatenate([starts, others]))
+        states = distinct(network, both, 0)
         if len(states) >= len(near):
             return _states_of(problem, feed, network, states, np.zeros(len(states)))
     branch = follow(network, 0)
     found = [at_volume(network, 0, branch), more_states(network, 0, _MORE_STARTS)]
     if not branch.whole or not len(found[0]):
-        one = solve_network(network.balance, branch=False)
+        one = solve(network, branch=False, restarts=_RESTARTS)
         if one.accepted[0]:
             found.append(network.scaled(one.flows, one.temperature))
     states = distinct(network, np.concatenate(found), 0)

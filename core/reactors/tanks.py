@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.errors import Note
+from core.errors import Note, refuse
 from core.reactors.balances import Balances, Basis
 from core.reactors.marching import Work
 from core.reactors.observed import Fed, Observer
@@ -42,6 +43,7 @@ def through_tanks(
     work: Work,
     size: float,
     near: float | None = None,
+    known: dict[int, tuple[SteadyState, ...]] | None = None,
 ) -> Course:
     """Return the course through one tank, or several of equal size.
 
@@ -57,12 +59,15 @@ def through_tanks(
     near : float, optional
         The conversion at the outlet of the last that they are sized for; of several
         states the closest is described. Left out: the stable one of the highest.
+    known : dict, optional
+        States of each tank at a size that differs little; those of this one replace them.
 
     Raises
     ------
     Refused
-        As :func:`core.reactors.steady_states.steady_states`.
+        As :func:`core.reactors.steady_states.steady_states`; ``compute-budget``.
     """
+    seen = {} if known is None else known
     number = problem.reactor.number if isinstance(problem.reactor, TanksInSeries) else 1
     feed = problem.feed
     notes: list[Note] = []
@@ -73,7 +78,11 @@ def through_tanks(
     for k in range(number):
         inside = replace(problem, feed=feed, reactor=StirredTank())
         wanted = near if k == number - 1 else None
-        tank = _at_rest(inside, basis, at, size / number, wanted, curves=number == 1)
+        check_budget(work)
+        tank = _at_rest(
+            inside, basis, at, size / number, wanted, seen.get(k, ()), work, curves=number == 1
+        )
+        seen[k] = tank.states.states
         volume, mass, _ = sizes_of(problem, basis, size / number)
         flow = tank.outlet.volumetric_flow
         if volume is not None and flow is not None:
@@ -99,7 +108,6 @@ def through_tanks(
                 )
             )
         at, feed = Fed(at.flows, at_outlet), tank.outlet
-        work.take(tank.states.evaluations)
     assert told is not None
     balances = Balances(replace(last, feed=problem.feed), basis, problem.feed)
     observer = Observer(balances, before)
@@ -116,20 +124,41 @@ def through_tanks(
     )
 
 
+def check_budget(work: Work) -> None:
+    """Refuse to go on where no evaluations are left.
+
+    Raises
+    ------
+    Refused
+        ``compute-budget``.
+    """
+    if work.left <= 0:
+        raise refuse(
+            "compute-budget",
+            ("reactor",),
+            "the steady states of so many tanks were looked for that the work allowed for one"
+            " request is spent; narrow the range, or ask for fewer tanks or reactions",
+        )
+
+
 def _at_rest(
     problem: ReactorProblem,
     basis: Basis,
     before: Fed,
     size: float,
-    near: float | None,
+    wanted: float | None,
+    near: Sequence[SteadyState],
+    work: Work,
     *,
     curves: bool,
 ) -> _Tank:
-    found, notes = steady_states(problem, Size(basis, size), curves=curves)
+    found, notes = steady_states(
+        problem, Size(basis, size), curves=curves, near=near, spend=work.take
+    )
     states = tuple(_of_all_fed(problem, before, state) for state in found.states)
     described = found.described
-    if near is not None:
-        described = int(np.argmin([abs(state.conversion - near) for state in states]))
+    if wanted is not None:
+        described = int(np.argmin([abs(state.conversion - wanted) for state in states]))
     found = replace(found, states=states, described=described)
     return _Tank(states[described].outlet, found, tuple(notes))
 

@@ -262,3 +262,20 @@ def test_a_state_beyond_the_heat_capacities_is_told_or_refused():
     with pytest.raises(Refused) as refused:
         steady_states(hot, volume(0.4))
     assert refused.value.faults[0].code == "outside-correlation"
+
+
+def test_complete_conversion_just_reached_is_a_state():
+    # Of order zero in what is used up, in a tank that is just large enough.
+    reactions = reaction_set({"A": -1, "B": 1})
+    law = RateLaw(0, vector(reactions, {}), ConstantAt(300.0, 1.0, 0.0))
+    feed = replace(liquid(reactions, {"A": 2000}), temperature=300.0)
+    for v in (2.0 * (1 - 1e-16), 2.0, 2.0 * (1 + 1e-15)):
+        found, _ = steady_states(tank(reactions, law, feed), volume(v))
+        assert [state.conversion for state in found.states] == pytest.approx([1.0])
+
+
+def test_work_is_told():
+    spent = []
+    steady_states(liquid_tank(), volume(0.4), spend=spent.append)
+    assert len(spent) == 1
+    assert 100 <= spent[0] <= 2000
