@@ -169,7 +169,7 @@ class Caller:
     def _warned(self, message: Any, _: Any, filename: str, lineno: int, *__: Any) -> None:
         short = re.search(r"(?:core|schemas|service)/.*", filename)
         self.warned.append(
-            f"{short[0] if short else filename.rsplit('/', 1)[1]}:{lineno} {message}"
+            f"{short[0] if short else filename.rpartition('/')[2]}:{lineno} {message}"
         )
 
     def post(self, route: str, body: bytes, **headers: str) -> tuple[int, bytes, str, float]:
@@ -507,6 +507,8 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
 
     walk(result, "")
     codes = {note["code"] for note in (*answer["notes"], *answer["assumed"])}
+    for one in result.get("solutions", ()):
+        codes |= {note["code"] for note in one["notes"]}
     for path in nulls:
         name = path.rsplit("/", 1)[1]
         if name in _NULLS or "/reconciliation/readings/" in path:
@@ -579,10 +581,11 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
         if v is not None and v["value"] == 0 and result["conversion"]["value"] != 0:
             broken.append(("zero-volume", str(result["conversion"])))
         heat = result.get("heat") or {}
-        rises = [heat.get(name) for name in ("adiabatic_rise", "adiabatic_rise_complete")]
+        # A train, between whose stages heat passes, has none.
+        rises = [heat.get(name, 0) for name in ("adiabatic_rise", "adiabatic_rise_complete")]
         if (not heat or None in rises) and "heat-not-known" not in codes:
             broken.append(("heat-without-note", str(heat)))
-        if None not in rises and heat:
+        if None not in rises and "adiabatic_rise" in heat:
             within, whole = (abs(rise["value"]) for rise in rises)
             if within > whole * (1 + 1e-6) + 1e-6 and rises[0]["value"] * rises[1]["value"] > 0:
                 broken.append(("rise-beyond-complete", str(heat)))

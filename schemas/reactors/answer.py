@@ -478,7 +478,7 @@ class ReactorWriter:
         rate = "reaction_rate_per_mass" if by_mass else "reaction_rate"
         self._put(told, "outlet_rate", stage.rate, rate)
         told["outlet"] = self.stream(stage.outlet)
-        if stage.removed is not None:
+        if stage.removed is not None and stage.removed.phase_total > 0:
             told["removed"] = self.stream(stage.removed)
         if stage.steady_states is not None:
             self._steady_states(told, stage.steady_states)

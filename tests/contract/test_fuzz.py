@@ -37,7 +37,7 @@ def test_no_promise_is_broken(seed: int) -> None:
 def test_no_number_of_an_example_at_an_extreme_is_answered_with_a_fault() -> None:
     caller = Caller()
     for case, (route, body) in enumerate(sweep()):
-        if case % 40 == 0:
+        if case % 100 == 0:
             status, answer, _, _ = caller.post(route, body)
             assert status in (200, 400, 422), (route, body)
             assert b"NaN" not in answer
