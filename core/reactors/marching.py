@@ -270,7 +270,7 @@ class Marcher:
         if size == 0:
             found = np.append(y0, 0.0)[None]
             return self._made(x, found, ())
-        marched = self.run(x, y0)
+        marched = self._without_events(x, y0) or self.run(x, y0)
         if not marched.terminated:
             return self._made(x, marched.y, ())
         last = marched.crossings[-1]
@@ -300,6 +300,24 @@ class Marcher:
             },
         )
         return self._made(x, y, (note,))
+
+    def _without_events(self, x: FloatArray, y0: FloatArray) -> March | None:
+        """Return a march whose end shows that no event fired: pressure does nothing but fall.
+
+        To look for events on the way takes half as long again. None where something
+        else may fire, or something has.
+        """
+        if [name for name, _, _ in self.events] != ["pressure"]:
+            return None
+        _, event, _ = self.events[0]
+        events, self.events = self.events, []
+        try:
+            found = self.run(x, y0)
+        except Refused:
+            return None
+        finally:
+            self.events = events
+        return found if event.value(found.end, found.y_end.tolist()) > 0 else None
 
     def _made(self, x: FloatArray, y: FloatArray, notes: tuple[Note, ...]) -> Course:
         timed = not self.balances.feed.batch and self.observer.volume_known
