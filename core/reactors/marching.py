@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 from typing import TypeAlias
 
 import numpy as np
@@ -23,6 +24,7 @@ from core.numerics.integration import MOST_EVALUATIONS, Event, March, march
 from core.numerics.straight_line import Number
 from core.rates.rate_law import ByAffinity
 from core.reactors.balances import Balances, State
+from core.reactors.energetics import hottest_extents
 from core.reactors.observed import Observer
 from core.reactors.problem import Exchange, MaximumTarget, Target
 from core.reactors.telling import Course
@@ -41,7 +43,7 @@ PLACES = 201
 RTOL = 1e-10
 _ROUGH = 1e-6
 """The same for shots that only look where to aim."""
-_ATOL = 1e-13  # of the total flow, or of the state itself
+_ATOL = 1e-3  # of the relative tolerance, of the total flow or of the state itself
 _EXHAUSTED = 1e-3  # of the pressure at the inlet
 _DECADES = range(-6, 15)  # of the size that the inlet's rates suggest
 _STANDS = 1e-13  # of the total flow: less is no change
@@ -51,6 +53,7 @@ _OF_A_SHOT = 300  # evaluations, about, of one that is given up
 _MESH = 5_000  # places, at most, where shooting does not resolve
 _SHOT = 1e-9  # K, to which the temperature that the utility leaves with is found
 _MET = 1e-5  # K, to which it then enters at its own
+_MOST_RISE = 2000.0  # K, by reactions, that a utility is looked for at
 _COLDEST = 20.0  # K, of a utility in a shot
 _ASTRAY = 300.0  # K, beyond all temperatures that it may leave with: there a shot is given up
 _FAR = 1e4  # K, that a shot misses by which leaves these
@@ -113,7 +116,7 @@ class Marcher:
         """Return slopes that give a shot up where its utility goes astray."""
         at = self.balances.layout.utility
         assert at is not None
-        low, high = self._utility_range()
+        low, high = self._range
         low, high = max(low - _ASTRAY, _COLDEST), high + _ASTRAY
 
         def within(x: float, state: Sequence[float]) -> list[float]:
@@ -161,8 +164,9 @@ class Marcher:
         total = float(y0[:substances].sum())
         if self.balances.fed is not None:
             total += float(self.balances.fed.flows.sum()) * self._scale()
-        atol = np.full(self.size + 1, _ATOL * max(total, 1e-300))
-        atol[substances:-1] = _ATOL * np.maximum(y0[substances:], 1.0)
+        least = _ATOL * self.rtol
+        atol = np.full(self.size + 1, least * max(total, 1e-300))
+        atol[substances:-1] = least * np.maximum(y0[substances:], 1.0)
         atol[-1] = 1e-30
         return atol
 
@@ -449,7 +453,7 @@ class Marcher:
                 return float("nan")
             return float(found.y[-1, at]) - wanted
 
-        low, high = self._utility_range()
+        low, high = self._range
         guesses = np.unique(np.append(np.linspace(low, high, _GUESSES), wanted))
         self.rtol = _ROUGH
         misses = np.array([miss(float(guess)) for guess in guesses])
@@ -580,7 +584,8 @@ class Marcher:
             step *= 8.0
         return None
 
-    def _utility_range(self) -> tuple[float, float]:
+    @cached_property
+    def _range(self) -> tuple[float, float]:
         """Return between which temperatures the utility leaves, at the widest looked at."""
         balances = self.balances
         thermal = balances.problem.thermal
@@ -594,11 +599,15 @@ class Marcher:
             float(f) * float(cp.at(t0))
             for f, cp in zip(feed.flows, heats.heat_capacities, strict=True)
         )
-        each = np.abs(heats.enthalpy(t0))
-        rise = float(each.max() * feed.flows.sum()) / capacity if capacity else 0.0
-        rise = min(rise, 2000.0)
+        enthalpies = heats.enthalpy(t0)
+        reactions, flows = balances.problem.reactions, np.asarray(feed.flows, dtype=float)
+        warmest = hottest_extents(reactions, flows, enthalpies)
+        coldest = hottest_extents(reactions, flows, -enthalpies)
+        rise = -float(warmest @ enthalpies) / capacity if capacity else 0.0
+        fall = float(coldest @ enthalpies) / capacity if capacity else 0.0
         low, high = min(t0, wanted), max(t0, wanted)
-        return max(low - 0.2 * rise - 20.0, 60.0), min(high + rise + 20.0, 5900.0)
+        rise, fall = min(rise, _MOST_RISE), min(fall, _MOST_RISE)
+        return max(low - fall - 20.0, 60.0), min(high + rise + 20.0, 5900.0)
 
     def _no_shot(
         self, guesses: FloatArray, misses: FloatArray, course: Callable[[FloatArray], Course]
