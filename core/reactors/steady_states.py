@@ -167,7 +167,7 @@ def steady_states(
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
     if not len(found.case):
-        raise _beyond(balance)
+        raise _not_found() if balance.heat is None else _beyond(balance)
     states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))
     complete = bool(found.complete[0]) and not bool(found.cut[0])
     heat_curves = None

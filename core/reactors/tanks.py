@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.errors import Note
+from core.errors import Note, Refused, refuse
 from core.reactors.balances import Balances, Basis
 from core.reactors.marching import Work
 from core.reactors.observed import Fed, Observer
@@ -24,6 +24,9 @@ METHOD_SEVERAL = (
     "the steady-state balances of moles and energy, by Newton's method, pseudo-transients and"
     " continuation in the size"
 )
+
+_IN_VAIN = 50_000
+"""Evaluations that a search for steady states counts which finds none: about what it takes."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -73,7 +76,7 @@ def through_tanks(
     for k in range(number):
         inside = replace(problem, feed=feed, reactor=StirredTank())
         wanted = near if k == number - 1 else None
-        tank = _at_rest(inside, basis, at, size / number, wanted, curves=number == 1)
+        tank = _counted(work, inside, basis, at, size / number, wanted, curves=number == 1)
         volume, mass, _ = sizes_of(problem, basis, size / number)
         flow = tank.outlet.volumetric_flow
         if volume is not None and flow is not None:
@@ -114,6 +117,33 @@ def through_tanks(
         stages=tuple(stages),
         notes=tuple(notes),
     )
+
+
+def _counted(
+    work: Work,
+    problem: ReactorProblem,
+    basis: Basis,
+    before: Fed,
+    size: float,
+    near: float | None,
+    *,
+    curves: bool,
+) -> _Tank:
+    """Return the tank at rest while there is work left; a search in vain counts in full."""
+    if work.left <= 0:
+        raise refuse(
+            "compute-budget",
+            ("reactor",),
+            "the steady states of tanks of one trial size after another took all {count}"
+            " evaluations of the balances that a request may take; ask for fewer tanks, a target farther from"
+            " the limit, or state fewer reactions",
+            count=work.spent,
+        )
+    try:
+        return _at_rest(problem, basis, before, size, near, curves=curves)
+    except Refused:
+        work.take(_IN_VAIN)
+        raise
 
 
 def _at_rest(
