@@ -135,8 +135,8 @@ def _counted(
             "compute-budget",
             ("reactor",),
             "the steady states of tanks of one trial size after another took all {count}"
-            " evaluations of the balances that a request may take; ask for fewer tanks, a target farther from"
-            " the limit, or state fewer reactions",
+            " evaluations of the balances that a request may take; ask for fewer tanks, a target"
+            " farther from the limit, or state fewer reactions",
             count=work.spent,
         )
     try:
