@@ -65,10 +65,14 @@ def _several(found: SteadyStates, id_: str) -> Iterator[Note]:
     where = f" {{tank}} has {len(each)}" if id_ else f" has {len(each)}"
     if id_:
         facts["tank"] = id_
+    which = found.states[found.described].outlet.temperature
+    if which is not None:
+        facts["described"] = Amount(float(which), "temperature")
+    told = " The one at {described} is described." if which is not None else ""
     yield Note(
         "several-steady-states",
         f"the tank{where} steady states{at}: which of them it comes to hangs on how it is started,"
-        " and a disturbance can take it from one to another." + _NOT_ASSESSED,
+        f" and a disturbance can take it from one to another.{told}" + _NOT_ASSESSED,
         "caution",
         ("reactor",),
         facts,

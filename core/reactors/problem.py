@@ -211,11 +211,15 @@ class MixStage:
 
 @dataclass(frozen=True)
 class TemperatureStage:
-    """Cooled or heated, to a temperature, K, or by a duty, W (above zero: supplied)."""
+    """Cooled or heated, to a temperature, K, or by a duty, W (above zero: supplied).
+
+    ``kind`` is which of the two it is built for; None: as it turns out.
+    """
 
     id: str
     temperature: float | None = None
     duty: float | None = None
+    kind: Literal["cool", "heat"] | None = None
 
 
 @dataclass(frozen=True, eq=False)

@@ -204,7 +204,7 @@ def _read_exchanger(
         )
         return None
     sign = -1.0 if said["kind"] == "cool" else 1.0
-    return TemperatureStage(said["id"], to, None if duty is None else sign * duty)
+    return TemperatureStage(said["id"], to, None if duty is None else sign * duty, said["kind"])
 
 
 def _read_separator(

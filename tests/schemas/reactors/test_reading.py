@@ -135,8 +135,8 @@ def test_a_train():
     first, cooler, second, shot, warm, absorber, last = train.stages
     assert isinstance(first.thermal, Adiabatic)
     assert isinstance(second.thermal, Adiabatic)  # that of the request
-    assert cooler == TemperatureStage("cooler", 713.15, None)
-    assert warm == TemperatureStage("warm", None, 500e3)
+    assert cooler == TemperatureStage("cooler", 713.15, None, "cool")
+    assert warm == TemperatureStage("warm", None, 500e3, "heat")
     assert isinstance(shot, MixStage)
     names = rated("train").reactions.names
     assert_allclose(shot.stream.flows[names.index("O2")], 40 / 3.6)
