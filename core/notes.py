@@ -212,6 +212,12 @@ NOTES: dict[str, Entry] = {
         " starting can take it from one to another. Runaway is not assessed; follow local codes and"
         " licensed practice.",
     ),
+    "exchanger-works-backwards": Entry(
+        "A cooler that heats, or a heater that cools",
+        "What comes to a stage of a train is already beyond the temperature that the stage is to"
+        " bring it to, so that its duty has the other sign. Check that temperature, and whether"
+        " the stage before leaves the stream as hot as computed.",
+    ),
     "reactant-exhausted": Entry(
         "Reactant used up",
         "The rate does not fade with a reactant, which is used up inside the reactor; beyond there"
@@ -225,11 +231,6 @@ NOTES: dict[str, Entry] = {
     "search-not-proven": Entry(
         "Search that proves nothing",
         "The steady states are those that a search found; there may be others.",
-    ),
-    "exchanger-works-backwards": Entry(
-        "Cooler that heats, or heater that cools",
-        "The temperature stated behind a cooler is above that of what enters it, or behind a heater"
-        " below. Check it, and the stages before.",
     ),
     "temperature-limit-exceeded": Entry(
         "Temperature limit exceeded",

@@ -111,7 +111,8 @@ class EdgeMap:
     def number(self, value: float, dimension: str, unit: str | None = None) -> Json:
         """Return the Number of an SI value, in ``unit`` or the dimension's own."""
         scale = self.scales[dimension] if unit is None else self._scale(dimension, unit)
-        return {"value": (value - scale.offset) / scale.factor, "unit": scale.unit}
+        # No zero below zero leaves.
+        return {"value": (value - scale.offset) / scale.factor + 0.0, "unit": scale.unit}
 
     def _scale(self, dimension: str, unit: str | None) -> Scale:
         if unit is None:

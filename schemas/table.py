@@ -24,5 +24,5 @@ class Table:
 
 
 def cells(values: FloatArray) -> list[float | None]:
-    """Return a column of numbers; None where there is none."""
-    return [value if math.isfinite(value) else None for value in values.tolist()]
+    """Return a column of numbers; None where there is none, and no zero below zero."""
+    return [value if math.isfinite(value) else None for value in (values + 0.0).tolist()]

@@ -239,6 +239,14 @@ class Balances:
         return per / float(density)
 
     @property
+    def volume_per_size(self) -> float | None:
+        """Reactor volume in one unit of the independent variable, m3; None where not known."""
+        if self.basis != "catalyst_mass":
+            return 1.0
+        density = getattr(self.problem.reactor, "bulk_density", None)
+        return None if density is None else 1.0 / float(density)
+
+    @property
     def fed(self) -> Stream | None:
         """What flows into a batch while it reacts."""
         reactor = self.problem.reactor

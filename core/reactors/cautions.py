@@ -11,7 +11,6 @@ from core.reactors.reacted import (
     Accumulation,
     Reacted,
     ReactorProfile,
-    StageReached,
     SteadyStates,
 )
 
@@ -39,12 +38,6 @@ def cautions(problem: ReactorProblem, reacted: Reacted) -> Iterator[Note]:
     unproven = [id_ for id_, found in tanks if not found.complete]
     if unproven:
         yield _unproven(unproven)
-    for stage in reacted.stages:
-        if (
-            stage.duty is not None
-            and stage.duty * {"cool": 1.0, "heat": -1.0}.get(stage.kind, 0) > 0
-        ):
-            yield _backwards(stage)
     if reacted.accumulation is not None:
         yield _accumulated(problem.reactions, reacted.accumulation, limit)
 
@@ -64,18 +57,6 @@ def _most(profile: ReactorProfile) -> float:
     return float("-inf") if profile.temperature is None else float(profile.temperature.max())
 
 
-def _backwards(stage: StageReached) -> Note:
-    does = "heats" if stage.kind == "cool" else "cools"
-    return Note(
-        "exchanger-works-backwards",
-        f"the stage {{stage}} is meant to {stage.kind} and {does}, to the temperature stated behind"
-        " it: check that temperature, and what the stages before it make of theirs",
-        "warning",
-        ("reactor", "stages", stage.id),
-        {"stage": stage.id},
-    )
-
-
 def _several(found: SteadyStates, id_: str) -> Iterator[Note]:
     if len(found.states) < 2:
         return
@@ -89,10 +70,14 @@ def _several(found: SteadyStates, id_: str) -> Iterator[Note]:
     where = f" {{tank}} has {len(each)}" if id_ else f" has {len(each)}"
     if id_:
         facts["tank"] = id_
+    which = found.states[found.described].outlet.temperature
+    if which is not None:
+        facts["described"] = Amount(float(which), "temperature")
+    told = " The one at {described} is described." if which is not None else ""
     yield Note(
         "several-steady-states",
         f"the tank{where} steady states{at}: which of them it comes to hangs on how it is started,"
-        " and a disturbance can take it from one to another." + _NOT_ASSESSED,
+        f" and a disturbance can take it from one to another.{told}" + _NOT_ASSESSED,
         "caution",
         ("reactor",),
         facts,

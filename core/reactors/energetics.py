@@ -40,6 +40,8 @@ from core.reactors.reacted import (
     EquilibriumBesides,
     ReactorHeat,
 )
+from core.real_gas.remarks import remark_on_constants
+from core.real_gas.witness import witness_of
 from core.streams.cautions import fuel_with_oxidant
 from core.streams.metered import Measurement
 from core.streams.stream import Stream
@@ -319,6 +321,7 @@ class _Finder:
             self.notes.append(_NEEDS_IDEAL)
             return EquilibriumBesides(conversion, over)
         found = {j: self._approach(j, c) for j, c in stated.items()}
+        self._judge_constants(list(stated))
         adiabatic = None
         known = problem.heats
         if len(stated) == len(self.nu) and known is not None and known.of_all is not None:
@@ -426,6 +429,20 @@ class _Finder:
             return None
         self._tell(notes)
         return found[0]
+
+    def _judge_constants(self, stated: list[int]) -> None:
+        """Say where fugacities would change a constant that is used with partial pressures."""
+        problem, out = self.problem, self.outcome.outlet
+        if out.phase != "gas" or problem.gas is not None or self.feed.compressibility != 1.0:
+            return
+        witness = witness_of(problem.reactions, out.in_phase.tobytes())
+        if witness is None or self.leaving is None or out.pressure is None:
+            return
+        ln_phi = witness.gas.ln_fugacity_coefficients(
+            np.array(self.leaving), np.array(float(out.pressure)), out.flows
+        )
+        ids = [problem.reactions.reactions[j].id for j in stated]
+        self.notes += remark_on_constants((self.nu[stated] @ ln_phi)[None], ids, _FEED)
 
     def _alone(self, j: int) -> ReactionSet:
         """Return one reaction among all the substances."""

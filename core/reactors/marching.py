@@ -324,6 +324,8 @@ class Marcher:
         return found if event.value(found.end, found.y_end.tolist()) > 0 else None
 
     def _made(self, x: FloatArray, y: FloatArray, notes: tuple[Note, ...]) -> Course:
+        # The march adds up dx/v, which is a time where x is a volume.
+        per = self.balances.volume_per_size
         timed = not self.balances.feed.batch and self.observer.volume_known
         return Course(
             self.observer,
@@ -331,7 +333,7 @@ class Marcher:
             y[:, :-1],
             METHOD,
             self.work.spent,
-            float(y[-1, -1]) if timed else None,
+            float(y[-1, -1]) * per if timed and per is not None else None,
             notes=notes,
         )
 
@@ -543,7 +545,9 @@ class Marcher:
         x = np.linspace(0.0, size, PLACES)
         y = solved.sol(x / size).T * scale
         volume = self.observer.see(x, y).volume
-        time = None if volume is None else float(simpson(1.0 / volume, x=x))
+        per, time = balances.volume_per_size, None
+        if volume is not None and per is not None:
+            time = float(simpson(1.0 / volume, x=x)) * per
         return Course(self.observer, x, y, METHOD_WHOLE, self.work.spent, time)
 
     def _too_close(self) -> Refused:

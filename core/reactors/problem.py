@@ -213,7 +213,7 @@ class MixStage:
 class TemperatureStage:
     """Cooled or heated, to a temperature, K, or by a duty, W (above zero: supplied).
 
-    ``kind`` is what it is meant to do; None: whichever it does.
+    ``kind`` is which of the two it is built for; None: as it turns out.
     """
 
     id: str

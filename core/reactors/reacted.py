@@ -80,10 +80,14 @@ class ReactorProfile:
 
 @dataclass(frozen=True)
 class Hottest:
-    """The highest temperature, K, and where: the volume, m3, catalyst mass, kg, or time, s."""
+    """The highest temperature, K, and where: the volume, m3, catalyst mass, kg, or time, s.
+
+    ``stage`` is the one of a train, from whose inlet that counts.
+    """
 
     temperature: float
     at: Amount | None = None
+    stage: str | None = None
 
 
 @dataclass(frozen=True, eq=False)
@@ -137,6 +141,25 @@ class EquilibriumBesides:
     over_temperature: bool = False
     adiabatic: AdiabaticEquilibrium | None = None
     approaches: Mapping[int, ReactionApproach | None] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, eq=False)
+class KeyYields:
+    """What becomes of the key, of several reactions; on key basis.
+
+    Attributes
+    ----------
+    products : tuple of int, length P
+    factors : ndarray, shape (P,)
+        Moles of key that a mole of product takes; not a number where that is not one.
+    yields, selectivities : ndarray, shape (P,)
+        Per key fed and per key converted; not a number where not known.
+    """
+
+    products: tuple[int, ...]
+    factors: FloatArray
+    yields: FloatArray
+    selectivities: FloatArray
 
 
 @dataclass(frozen=True, eq=False)
@@ -216,6 +239,8 @@ class StageReached:
         Supplied (below zero: removed), W.
     rate : float or None
         Of consumption of the key at its outlet, mol/(m3 s) or mol/(kg s).
+    by_catalyst_mass : bool
+        Which of the two.
     removed : Stream or None
         What a separator takes out.
     profile : ReactorProfile or None
@@ -232,6 +257,7 @@ class StageReached:
     length: float | None = None
     duty: float | None = None
     rate: float | None = None
+    by_catalyst_mass: bool = False
     removed: Stream | None = None
     profile: ReactorProfile | None = None
     steady_states: SteadyStates | None = None
@@ -295,6 +321,8 @@ class Reacted:
         Of the key; of a train and a fed batch of all that was fed.
     extents : ndarray, shape (R,), or None
         mol/s (batch: mol); None where dependent reactions leave them open.
+    yields : KeyYields or None
+        Of several reactions.
     volume, catalyst_mass, length, time : float or None
         Of the reactor, m3, kg, m; of a batch its volume at the start, and s.
     limit : ConversionLimit or None
@@ -333,6 +361,7 @@ class Reacted:
     outlet: Stream
     conversion: float
     extents: FloatArray | None = None
+    yields: KeyYields | None = None
     volume: float | None = None
     catalyst_mass: float | None = None
     length: float | None = None

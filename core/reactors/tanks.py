@@ -104,6 +104,7 @@ def through_tanks(
                     volume=volume,
                     catalyst_mass=mass,
                     rate=float(-(rates @ problem.reactions.nu[:, key])),
+                    by_catalyst_mass=basis == "catalyst_mass",
                     steady_states=tank.states,
                 )
             )

@@ -32,6 +32,7 @@ from core.reactors.reacted import (
     StageReached,
     SteadyStates,
 )
+from core.reactors.yields import yields_of
 from core.real_gas.witness import witness_of
 from core.streams.stream import Stream
 from core.substances.property_data import StandardProperties
@@ -121,6 +122,7 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
     if not batch and volume is not None and v0 is not None:
         space_time = volume / float(v0)
     extents, told = _extents(problem, course, seen)
+    yields, of_yields = yields_of(problem, extents, _key_fed(problem, size))
     entered = _entered(problem, size)
     found = energetics_of(problem, Outcome(outlet, extents, course.limit, entered))
     constants = [(j, c) for j, c in enumerate(problem.constants) if c is not None]
@@ -136,6 +138,7 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
         outlet=outlet,
         conversion=float(seen.conversion[-1]),
         extents=extents if told else None,
+        yields=yields,
         volume=None if batch and v0 is None else float(v0) if batch else volume,  # type: ignore[arg-type]
         catalyst_mass=None if batch else mass,
         length=length,
@@ -166,6 +169,7 @@ def tell(problem: ReactorProblem, course: Course, points: int) -> Reacted:
                 for note in c.notes(t, constant_subject(problem.reactions, j))
             ),
             *found.notes,
+            *of_yields,
             *remarks(problem, outlet),
         ),
         assumed=(
@@ -186,6 +190,14 @@ def outlet_of(course: Course) -> Stream:
     check_temperatures(course.balances.problem, seen.temperature)
     check_gas(course.balances.problem, seen)
     return course.observer.stream(seen)
+
+
+def _key_fed(problem: ReactorProblem, time: float) -> float:
+    """Return all of the key that was fed, mol/s; of a batch mol, with what was fed to it."""
+    reactor, fed = problem.reactor, float(problem.feed.flows[problem.key])
+    if isinstance(reactor, Batch) and reactor.fed is not None:
+        fed += float(reactor.fed.stream.flows[problem.key]) * min(time, reactor.fed.until)
+    return fed
 
 
 def _entered(problem: ReactorProblem, time: float) -> Stream | None:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from core.arrays import FloatArray
-from core.errors import Fact, Fault, Note, Refused, refuse
+from core.errors import Amount, Fact, Fault, Note, Refused, refuse
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
 from core.reactors.marching import Work
@@ -33,9 +34,20 @@ from core.reactors.scanning import first_size
 from core.reactors.sizing_tanks import tank_scale
 from core.reactors.solving import basis_of, fed_of, run, size_for
 from core.reactors.telling import assumptions, outlet_of, remarks, tell
+from core.reactors.yields import yields_of
 from core.streams.stream import Stream
 
 METHOD = "stage by stage"
+_BESIDES = ("mix", "cool", "heat", "separate")
+_OF_THE_WHOLE = ("yield-factor-missing", "denominator-near-zero")
+"""Told of the train and not of each of its reactors."""
+_NO_RISE = Note(
+    "heat-not-known",
+    "no adiabatic rise of the conversion reached is given: streams join or leave between the"
+    " stages, so that what would be heated is not one stream; each stage has its own temperatures."
+    " That of complete conversion is of the feed alone",
+    subject=("feed",),
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -221,9 +233,8 @@ def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int | None, wo
             assert stage.duty is not None
             stream, duty = heated(problem, at.stream, where, stage.duty), stage.duty
         before, after = at.stream.temperature, stream.temperature
-        warmer = (after or 0.0) > (before or 0.0)
-        kind = stage.kind or ("heat" if warmer else "cool")
-        return _other(at, stage.id, kind, stream, at.fed, key, duty)
+        turned_out = "heat" if (after or 0.0) > (before or 0.0) else "cool"
+        return _other(at, stage.id, stage.kind or turned_out, stream, at.fed, key, duty)
     assert isinstance(stage, SeparateStage)
     taken = at.stream.flows * stage.removed
     share = _share_kept(at.stream, taken)
@@ -279,6 +290,7 @@ def _after(problem: ReactorProblem, stage: ReactorStage, at: _At, reacted: React
         length=reacted.length,
         duty=None if reacted.heat is None else reacted.heat.duty,
         rate=reacted.key_rate,
+        by_catalyst_mass=reacted.by_catalyst_mass,
         profile=reacted.profile,
         steady_states=reacted.steady_states,
     )
@@ -288,11 +300,30 @@ def _after(problem: ReactorProblem, stage: ReactorStage, at: _At, reacted: React
     return _At(reacted.outlet, fed, extents, (*at.reached, told), (*at.reacted, reacted))
 
 
+def _backwards(stages: tuple[StageReached, ...]) -> Iterator[Note]:
+    """Say where a cooler would have to heat, or a heater to cool."""
+    for stage in stages:
+        sign = {"cool": -1.0, "heat": 1.0}.get(stage.kind)
+        if sign is None or stage.duty is None or not stage.duty * sign < 0:
+            continue
+        does = "supply" if stage.kind == "cool" else "remove"
+        yield Note(
+            "exchanger-works-backwards",
+            f"the {'cooler' if stage.kind == 'cool' else 'heater'} {{stage}} would have to {does}"
+            " {duty} to bring what comes to it to its temperature; check that temperature and the"
+            " stage before",
+            "warning",
+            ("reactor", "stages", stage.id),
+            {"stage": stage.id, "duty": Amount(abs(stage.duty), "power")},
+        )
+
+
 def _told(problem: ReactorProblem, end: _At) -> Reacted:
     """Return the whole train at work."""
     independent = problem.reactions.rank == len(problem.reactions.nu)
     mixes = any(stage.kind in ("mix", "separate") for stage in end.reached)
     found = energetics_of(problem, Outcome(end.stream, end.extents))
+    yields, of_yields = yields_of(problem, end.extents, float(end.fed.flows[problem.key]))
     heat = found.heat
     counted = [stage.duty for stage in end.reached if stage.kind not in ("mix", "separate")]
     if heat is not None:
@@ -301,7 +332,6 @@ def _told(problem: ReactorProblem, end: _At) -> Reacted:
             heat,
             duty=float(sum(d for d in counted if d is not None)) if known else None,
             adiabatic_rise=None if mixes else heat.adiabatic_rise,
-            adiabatic_rise_complete=None if mixes else heat.adiabatic_rise_complete,
         )
     times = [r.mean_residence_time for r in end.reacted]
     volumes = [r.volume for r in end.reacted]
@@ -309,10 +339,19 @@ def _told(problem: ReactorProblem, end: _At) -> Reacted:
     notes: dict[tuple[object, ...], Note] = {}
     for each in end.reacted:
         for note in each.notes:
+            if note.code in _OF_THE_WHOLE:
+                continue
             notes.setdefault((note.code, note.detail, note.subject), note)
-    for note in (*found.notes, *remarks(problem, end.stream)):
+    other = [_NO_RISE] if mixes and heat is not None else []
+    other += [*of_yields, *_backwards(end.reached), *remarks(problem, end.stream)]
+    for note in (*found.notes, *other):
         notes.setdefault((note.code, note.detail, note.subject), note)
-    hot = [r.hottest for r in end.reacted if r.hottest is not None]
+    ids = [stage.id for stage in end.reached if stage.kind not in _BESIDES]
+    hot = [
+        replace(r.hottest, stage=id_)
+        for id_, r in zip(ids, end.reacted, strict=True)
+        if r.hottest is not None
+    ]
     volume = None if None in volumes else float(sum(v for v in volumes if v is not None))
     v0 = problem.feed.volumetric_flow
     return Reacted(
@@ -320,6 +359,7 @@ def _told(problem: ReactorProblem, end: _At) -> Reacted:
         outlet=end.stream,
         conversion=end.fed.consumed / float(end.fed.flows[problem.key]),
         extents=end.extents if independent else None,
+        yields=yields,
         volume=volume,
         catalyst_mass=None if None in masses else float(sum(m for m in masses if m is not None)),
         space_time=None if volume is None or v0 is None else volume / float(v0),

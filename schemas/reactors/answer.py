@@ -18,6 +18,7 @@ from core.reactors.reacted import (
     EquilibriumBesides,
     HeatCurves,
     Hottest,
+    KeyYields,
     Reacted,
     ReactorHeat,
     ReactorProfile,
@@ -30,6 +31,7 @@ from core.streams.stream import Stream
 from core.substances.property_data import PACKAGED
 from schemas.answer import ATOMIC_WEIGHTS, Answer
 from schemas.approach import ApproachSchema, write_approach
+from schemas.conversion_answer import RatioSchema
 from schemas.edge import EdgeMap, Json
 from schemas.feed import StreamResultSchema, words_of, write_known_stream
 from schemas.fields import Map, describe
@@ -97,6 +99,9 @@ class HottestSchema(OpenSchema):
     volume = number("From the inlet to there.")
     catalyst_mass = number("From the inlet to there.")
     time = number("Of a batch.")
+    stage = fields.String(
+        metadata=describe("Of a train: the stage, from whose inlet the place counts.")
+    )
 
 
 class SteadyStateSchema(OpenSchema):
@@ -108,6 +113,10 @@ class SteadyStateSchema(OpenSchema):
         required=True,
         allow_none=True,
         metadata=describe("Null at the edge, where rounding would decide."),
+    )
+    described = fields.Boolean(
+        required=True,
+        metadata=describe("Whether it is the one that the rest of the answer describes."),
     )
     extents = numbers_by_name(text="By reaction.")
     outlet = fields.Nested(StreamResultSchema, required=True)
@@ -181,6 +190,12 @@ class ReactorResult(OpenSchema):
     time = number("Of a batch.")
     conversion = number("Of the key.", required=True)
     extents = numbers_by_name(text="By reaction; null where dependent reactions leave them open.")
+    yields = numbers_by_name(
+        RatioSchema,
+        "By product of several reactions, per key fed; null, with a note, where the reactions that"
+        " make it do not all consume the key at one ratio.",
+    )
+    selectivities = numbers_by_name(RatioSchema, "By product, per key converted.")
     largest_conversion = number(
         "Of the key on this way: at equilibrium, or where a substance is used up."
     )
@@ -200,7 +215,10 @@ class ReactorResult(OpenSchema):
             " volume), mass (of the inlet, per mass of catalyst)."
         ),
     )
-    mean_residence_time = number("Integral of dV/v; of a tank V/v at its outlet.")
+    mean_residence_time = number(
+        "Integral of dV/v, of a bed its whole volume; of a tank V/v at its outlet; of a reactor"
+        " with recycle that of one pass."
+    )
     outlet_rate = number("Rate of the key's consumption at the outlet.")
     pressure_drop = number("Along a bed, where it is counted.")
     hottest = fields.Nested(
@@ -291,6 +309,9 @@ class ReactorWriter:
         self._sizes(told, reacted)
         told["conversion"] = self.edge.number(reacted.conversion, "dimensionless")
         told["extents"] = self._extents(reacted.extents)
+        if reacted.yields is not None:
+            told["yields"] = self._ratios(reacted.yields, reacted.yields.yields)
+            told["selectivities"] = self._ratios(reacted.yields, reacted.yields.selectivities)
         limit = reacted.limit
         if limit is not None:
             told["largest_conversion"] = self.edge.number(limit.conversion, "dimensionless")
@@ -361,6 +382,16 @@ class ReactorWriter:
         each = zip(self.ids, extents.tolist(), strict=True)
         return {id_: self.edge.number(x + 0.0, dimension) for id_, x in each}
 
+    def _ratios(self, of: KeyYields, values: FloatArray) -> Json:
+        told: Json = {}
+        each = zip(of.products, values.tolist(), of.factors.tolist(), strict=True)
+        for i, value, factor in each:
+            ratio = self.maybe(value, "dimensionless")
+            if ratio is not None:
+                ratio |= {"basis": "key", "factor": self.edge.number(factor, "dimensionless")}
+            told[self.names[i]] = ratio
+        return told
+
     def _times(self, told: Json, reacted: Reacted) -> None:
         self._put(told, "space_time", reacted.space_time, "time")
         feed, mass = reacted.inlet, reacted.catalyst_mass
@@ -401,6 +432,8 @@ class ReactorWriter:
         if at is not None:
             member = "catalyst_mass" if at.dimension == "mass" else at.dimension
             told[member] = self.edge.number(at.value, at.dimension)
+        if hottest.stage is not None:
+            told["stage"] = hottest.stage
         return told
 
     def _equilibrium(self, found: EquilibriumBesides) -> Json:
@@ -432,15 +465,19 @@ class ReactorWriter:
         return told
 
     def _steady_states(self, told: Json, found: SteadyStates) -> None:
-        told["steady_states"] = [self._steady_state(state) for state in found.states]
+        told["steady_states"] = [
+            self._steady_state(state, described=k == found.described)
+            for k, state in enumerate(found.states)
+        ]
         told["complete"] = found.complete
 
-    def _steady_state(self, state: SteadyState) -> Json:
+    def _steady_state(self, state: SteadyState, *, described: bool) -> Json:
         t = state.outlet.temperature
         told: Json = {
             "temperature": None if t is None else self.edge.number(float(t), "temperature"),
             "conversion": self.edge.number(state.conversion, "dimensionless"),
             "stable": state.stable,
+            "described": described,
         }
         if state.extents is not None:
             told["extents"] = self._extents(state.extents)
@@ -474,8 +511,7 @@ class ReactorWriter:
         told["conversion"] = self.edge.number(stage.conversion, "dimensionless")
         self._sizes(told, stage)
         self._put(told, "duty", stage.duty, "power")
-        by_mass = stage.volume is None and stage.catalyst_mass is not None
-        rate = "reaction_rate_per_mass" if by_mass else "reaction_rate"
+        rate = "reaction_rate_per_mass" if stage.by_catalyst_mass else "reaction_rate"
         self._put(told, "outlet_rate", stage.rate, rate)
         told["outlet"] = self.stream(stage.outlet)
         if stage.removed is not None and stage.removed.phase_total > 0:

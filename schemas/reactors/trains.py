@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from typing import Literal
 
 import numpy as np
 from marshmallow import fields
@@ -204,9 +203,8 @@ def _read_exchanger(
             "state exactly one of 'to', the temperature behind it, and 'duty'",
         )
         return None
-    kind: Literal["cool", "heat"] = said["kind"]
-    sign = -1.0 if kind == "cool" else 1.0
-    return TemperatureStage(said["id"], to, None if duty is None else sign * duty, kind)
+    sign = -1.0 if said["kind"] == "cool" else 1.0
+    return TemperatureStage(said["id"], to, None if duty is None else sign * duty, said["kind"])
 
 
 def _read_separator(

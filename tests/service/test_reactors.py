@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import json
 
 import numpy as np
 import pytest
@@ -288,14 +289,104 @@ def test_units_do_not_matter(client):
         assert_allclose(two[path]["value"], one[path]["value"], rtol=1e-8)
 
 
-def test_a_heater_that_cools_is_told(client):
-    request = changed(
-        asked("three-beds-with-absorption-between"),
-        reactor__stages__6__to="150 degC",
+@pytest.mark.parametrize(
+    "name", ["bed-against-its-clean-pressure-drop", "partial-oxidation-in-cooled-tubes"]
+)
+def test_the_time_in_a_bed_is_that_of_its_volume(client, name):
+    # Both size the bed by mass of catalyst.
+    told = result(client, "rating", changed(asked(name), profile_points=201))
+    columns, units = told["profile"]["columns"], told["profile"]["units"]
+    assert (units["volume"], units["volumetric_flow"]) == ("m3", "m3/h")
+    hours = np.trapezoid(1 / np.array(columns["volumetric_flow"]), columns["volume"])
+    assert told["mean_residence_time"]["unit"] == "min"
+    assert_allclose(told["mean_residence_time"]["value"], 60 * hours, rtol=1e-4)
+
+
+def test_stages_tell_rates_in_the_unit_of_their_profile(answers):
+    beds = [s for s in answers["three-beds-with-absorption-between"]["stages"] if "profile" in s]
+    assert len(beds) == 3
+    for bed in beds:
+        assert bed["outlet_rate"] == {
+            "value": pytest.approx(bed["profile"]["columns"]["rate"][-1], rel=1e-9),
+            "unit": bed["profile"]["units"]["rate"],
+        }
+
+
+def test_the_hottest_place_of_a_train_names_its_stage(answers):
+    told = answers["three-beds-with-absorption-between"]
+    assert told["hottest"]["stage"] == "bed-1"
+    hottest = {s["id"]: s["outlet"]["temperature"]["value"] for s in told["stages"]}
+    assert told["hottest"]["temperature"]["value"] >= hottest["bed-1"] == max(hottest.values())
+
+
+def test_the_state_that_a_tank_is_described_in_is_marked(client, answers):
+    told = answers["three-steady-states-of-a-tank"]
+    (one,) = (state for state in told["steady_states"] if state["described"])
+    assert one["outlet"] == told["outlet"]
+    note = notes(client, "three-steady-states-of-a-tank")["several-steady-states"]
+    t = told["outlet"]["temperature"]["value"]
+    assert f"The one at {t:.6g} degC is described" in note["detail"]
+
+
+def test_a_heater_that_would_have_to_cool_is_told(client):
+    request = asked("three-beds-with-absorption-between")
+    places = {stage["id"]: k for k, stage in enumerate(request["reactor"]["stages"])}
+    hot = changed(request, **{f"reactor__stages__{places['economiser']}__to": "450 degC"})
+    body = post(client, "rating", hot).get_json()
+    stage = body["result"]["stages"][places["reheater"]]
+    assert (stage["id"], stage["kind"]) == ("reheater", "heat")
+    assert stage["duty"]["value"] < 0
+    (note,) = (n for n in body["notes"] if n["code"] == "exchanger-works-backwards")
+    assert note["severity"] == "warning"
+    assert note["pointer"] == f"/reactor/stages/{places['reheater']}"
+    assert f"{-stage['duty']['value']:.6g} kW" in note["detail"]
+    assert "exchanger-works-backwards" not in notes(client, "three-beds-with-absorption-between")
+
+
+def test_selectivities_of_a_network(answers):
+    told = answers["partial-oxidation-in-cooled-tubes"]
+    into, out = told["inlet"]["species"], told["outlet"]["species"]
+    change = {name: out[name]["flow"]["value"] - into[name]["flow"]["value"] for name in out}
+    for name, per_key in (("C2H4O", 1), ("CO2", 0.5), ("H2O", 0.5)):
+        selectivity, gained = told["selectivities"][name], told["yields"][name]
+        assert (selectivity["basis"], selectivity["factor"]["value"]) == ("key", per_key)
+        assert_allclose(selectivity["value"], -per_key * change[name] / change["C2H4"], rtol=1e-9)
+        assert_allclose(gained["value"], per_key * change[name] / 2600, rtol=1e-9)
+    both = told["selectivities"]["C2H4O"]["value"] + told["selectivities"]["CO2"]["value"]
+    assert_allclose(both, 1, rtol=1e-9)
+    assert not any("yields" in one for one in places(answers["cracking-in-plug-flow"]))
+
+
+def test_yields_where_the_key_does_not_make_a_product_directly(client):
+    # A -> R -> S: the second reaction does not consume the key, so that no ratio counts S.
+    request = asked("intermediate-in-four-tanks")
+    body = post(client, "rating", request).get_json()
+    told = body["result"]
+    lacking = [name for name, one in told["yields"].items() if one is None]
+    noted = [n for n in body["notes"] if n["code"] == "yield-factor-missing"]
+    assert len(lacking) == len(noted) == 1
+    assert lacking[0] in noted[0]["detail"]
+    counted = {name: one["value"] for name, one in told["yields"].items() if one is not None}
+    assert_allclose(
+        list(counted.values()),
+        [told["selectivities"][n]["value"] * told["conversion"]["value"] for n in counted],
+        rtol=1e-9,
     )
-    assert request["reactor"]["stages"][6]["kind"] == "heat"
-    answer = post(client, "rating", request).get_json()
-    (told,) = [n for n in answer["notes"] if n["code"] == "exchanger-works-backwards"]
-    assert told["pointer"] == "/reactor/stages/6"
-    assert answer["result"]["stages"][6]["kind"] == "heat"
-    assert answer["result"]["stages"][6]["duty"]["value"] < 0
+
+
+def test_an_ideal_gas_whose_fugacities_change_the_constant_is_told(client):
+    request = asked("pressure-for-a-yield")
+    assert request["gas_model"] == "peng-robinson"
+    codes = notes_of_solutions(client, request)
+    assert "fugacities-not-ideal" not in codes
+    assert "fugacities-not-ideal" in notes_of_solutions(client, changed(request, gas_model="ideal"))
+
+
+def notes_of_solutions(client, request):
+    told = result(client, "operating-point", request)
+    return {note["code"] for one in told["solutions"] for note in one["notes"]}
+
+
+def test_no_zero_below_zero(answers):
+    assert "-0.0," not in json.dumps(answers)
+    assert "-0.0}" not in json.dumps(answers)
