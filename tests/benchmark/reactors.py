@@ -17,7 +17,7 @@ from scipy.optimize import brentq
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT as R
 from core.reactors.balances import Balances
-from core.reactors.marching import Marcher, Work
+from core.reactors.march.marching import Marcher, Work
 from core.reactors.problem import Exchange, ReactorProblem
 from core.reactors.rating import rating
 from core.reactors.solving import _friction, fed_of

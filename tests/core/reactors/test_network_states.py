@@ -9,13 +9,15 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.optimize import brentq, fsolve
+from tests.core.reactors.tank.tanks import reaction_set, tank, volume
 
 from core.constants import GAS_CONSTANT
 from core.errors import Refused
 from core.numerics.straight_line import record
 from core.rates.constants import ConstantAt
 from core.rates.rate_law import RateLaw
-from core.reactors.network_states import (
+from core.reactors.problem import Adiabatic, Exchange
+from core.reactors.tank.network_states import (
     Network,
     at_volume,
     crossings,
@@ -23,13 +25,11 @@ from core.reactors.network_states import (
     newton,
     solve_network,
 )
-from core.reactors.problem import Adiabatic, Exchange
-from core.reactors.steady_states import sizes_for, steady_states
-from core.reactors.tank_balance import TankBalance
+from core.reactors.tank.steady_states import sizes_for, steady_states
+from core.reactors.tank.tank_balance import TankBalance
 from tests.core.reactors.builders import liquid, vector
 from tests.core.reactors.network_cases import draw, residual
 from tests.core.reactors.random_networks import run
-from tests.core.reactors.tanks import reaction_set, tank, volume
 
 CAPACITIES = {"A": 75.0, "B": 75.0, "C": 75.0, "S": 75.0}
 
