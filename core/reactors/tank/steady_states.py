@@ -48,6 +48,7 @@ _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
 _RESTARTS = 2  # of a network that its branch does not lead to
+_IN_VAIN = 4
 _A_STATE, _AN_ENCLOSURE = 8, 10
 """Evaluations of a march that one state of a network, or one box, counts as."""
 _MORE_STARTS, _FEW_STARTS = 12, 4
@@ -165,10 +166,11 @@ def steady_states(
     _check_unreacted(balance)
     if len(balance.nu) > 1:
         network = Network(balance)
-        try:
-            states = _searched(problem, feed, network, near)
-        finally:
-            spend(_A_STATE * network.evaluations)
+        states = _searched(problem, feed, network, near)
+        # A search in vain is dear: few are enough to know.
+        spend((_A_STATE if states else _IN_VAIN * _A_STATE) * network.evaluations)
+        if not states:
+            raise _not_found()
         return SteadyStates(states, complete=False, described=_described(states)), ()
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
@@ -205,7 +207,7 @@ def _searched(
             found.append(network.scaled(one.flows, one.temperature))
     states = distinct(network, np.concatenate(found), 0)
     if not len(states):
-        raise _not_found()
+        return ()
     return _states_of(problem, feed, network, states, np.zeros(len(states)))
 
 

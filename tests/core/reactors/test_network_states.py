@@ -273,7 +273,7 @@ def test_no_state_is_made_up_where_there_is_none():
     spent = []
     with pytest.raises(Refused) as refused:
         steady_states(series(1e-5, 10.0, second_order=0.0), volume(0.4), spend=spent.append)
-    assert 0 < sum(spent) < 50_000
+    assert 0 < sum(spent) < 150_000
     assert refused.value.faults[0].code == "steady-state-not-found"
     found, _ = steady_states(series(1e-3, 0.1, second_order=0.0), volume(0.4))
     assert found.states[0].outlet.flows[1] == pytest.approx(2.0 * 0.4 / 1.4 - 0.1 * 0.4, rel=1e-9)
