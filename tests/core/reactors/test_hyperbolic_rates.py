@@ -145,7 +145,8 @@ def test_the_basis_of_the_rate_is_that_of_the_size():
     assert (bed.dimension, bed.per) == ("volume", "bed-volume")
     assert (kilograms.dimension, kilograms.per) == ("catalyst_mass", "catalyst-mass")
     assert bed.space_time == by_volume.space_time
-    assert bed.mean_residence_time is kilograms.space_time is None
+    assert kilograms.space_time is None
+    assert bed.mean_residence_time == by_volume.mean_residence_time
     tank = size(REACTIONS, feed, mass, 0.8, StirredTank())
     assert (tank.dimension, tank.space_time, tank.mean_residence_time) == (
         "catalyst_mass",

@@ -9,7 +9,6 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from scipy.optimize import brentq, fsolve
-from tests.core.reactors.tank.tanks import reaction_set, tank, volume
 
 from core.constants import GAS_CONSTANT
 from core.errors import Refused
@@ -30,6 +29,7 @@ from core.reactors.tank.tank_balance import TankBalance
 from tests.core.reactors.builders import liquid, vector
 from tests.core.reactors.network_cases import draw, residual
 from tests.core.reactors.random_networks import run
+from tests.core.reactors.tanks import reaction_set, tank, volume
 
 CAPACITIES = {"A": 75.0, "B": 75.0, "C": 75.0, "S": 75.0}
 

@@ -6,7 +6,6 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from tests.core.reactors.tank.tanks import reaction_set, tank, volume
 
 from core.constants import GAS_CONSTANT
 from core.errors import Refused
@@ -27,6 +26,7 @@ from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from core.thermochemistry.heat_balance import adiabatic_temperature
 from core.thermochemistry.known_heats import known_heats
 from tests.core.reactors.builders import gas, liquid, vector
+from tests.core.reactors.tanks import reaction_set, tank, volume
 
 SUBSTANCES = {"A": 75.0, "B": 75.0, "S": 75.0}
 
