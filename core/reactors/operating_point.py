@@ -196,7 +196,7 @@ class _Search:
             self.states[value] = found.states
             streams = [state.outlet for state in found.states]
         else:
-            streams = [outlet_of(run(problem, fed_of(problem), self.work))]
+            streams = [outlet_of(run(problem, fed_of(problem), self.work, end_alone=True))]
         fed = fed_of(problem).flows
         if isinstance(reactor, Batch) and reactor.fed is not None and reactor.size is not None:
             fed = fed + reactor.fed.stream.flows * min(reactor.size.value, reactor.fed.until)

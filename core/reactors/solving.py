@@ -15,6 +15,7 @@ from core.reactors.march.marching import Marcher, Work
 from core.reactors.observed import Fed, Observer
 from core.reactors.one_reaction import along_path
 from core.reactors.problem import (
+    Adiabatic,
     Batch,
     ConversionTarget,
     PackedBed,
@@ -28,6 +29,10 @@ from core.reactors.problem import (
 from core.reactors.tank.sizing_tanks import tanks_for
 from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
+
+_VALUES_A_CALL = 20
+"""Of a rate along a path, which is evaluated at many places at once: as much work as one of a
+march."""
 
 
 def basis_of(problem: ReactorProblem) -> Basis:
@@ -48,7 +53,7 @@ def fed_of(problem: ReactorProblem) -> Fed:
     return Fed(np.asarray(problem.feed.flows, dtype=float))
 
 
-def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
+def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = False) -> Course:
     """Return the course through a reactor of the size that is stated.
 
     Parameters
@@ -58,6 +63,8 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
     before : Fed
         What was fed up to its inlet.
     work : Work
+    end_alone : bool
+        Whether what leaves is all that is asked for.
 
     Raises
     ------
@@ -81,7 +88,10 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
         return recycle.around(problem, basis, before, work, size=size)
     if along_path.has_path(problem):
         try:
-            return _observed(along_path.rated(problem, basis, size), before)
+            places = 2 if end_alone else along_path.PLACES
+            course = along_path.rated(problem, basis, size, places)
+            work.take(course.evaluations // _VALUES_A_CALL)
+            return _observed(course, before)
         except Refused as refused:
             # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
             # the integrand is too rough for its panels; a march goes on.

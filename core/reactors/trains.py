@@ -215,7 +215,7 @@ def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int | None, wo
     where = ("reactor", "stages", stage.id)
     if isinstance(stage, ReactorStage):
         inside = _inside(problem, stage, at.stream)
-        course = run(inside, at.fed, work)
+        course = run(inside, at.fed, work, end_alone=points is None)
         if points is None:
             stream = outlet_of(course)
             return replace(at, stream=stream, fed=_fed_after(problem, at, stream))

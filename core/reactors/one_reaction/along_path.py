@@ -113,8 +113,8 @@ def sized(problem: ReactorProblem, basis: Basis, conversion: float) -> Course:
     return _course(problem, basis, size_reactor(_sizing(problem, conversion), PLACES), None)
 
 
-def rated(problem: ReactorProblem, basis: Basis, size: float) -> Course:
-    """Return the course through a reactor of a size, m3, kg or s.
+def rated(problem: ReactorProblem, basis: Basis, size: float, places: int = PLACES) -> Course:
+    """Return the course through a reactor of a size, m3, kg or s, at so many places.
 
     Raises
     ------
@@ -122,7 +122,7 @@ def rated(problem: ReactorProblem, basis: Basis, size: float) -> Course:
         As :func:`core.reactors.sizing.rate_reactor`.
     """
     own = size * _factor(problem, basis)
-    return _course(problem, basis, rate_reactor(_sizing(problem, 0.0), own, PLACES), size)
+    return _course(problem, basis, rate_reactor(_sizing(problem, 0.0), own, places), size)
 
 
 def limit_of(problem: ReactorProblem) -> ConversionLimit | None:
