@@ -86,7 +86,10 @@ def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = F
         return through_tanks(problem, basis, before, work, size)
     if isinstance(reactor, RecyclePlugFlow):
         return recycle.around(problem, basis, before, work, size=size)
-    if along_path.has_path(problem):
+    # Where many are tried one after the other a march does, which is quicker where the
+    # temperature must be found at every place of a path.
+    tried = end_alone and isinstance(problem.thermal, Adiabatic)
+    if along_path.has_path(problem) and not tried:
         try:
             places = 2 if end_alone else along_path.PLACES
             course = along_path.rated(problem, basis, size, places)
