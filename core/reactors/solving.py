@@ -29,6 +29,10 @@ from core.reactors.tanks import through_tanks
 from core.reactors.telling import Course
 
 
+_OF_THE_LIMIT = ("integral-not-converged", "rate-not-finite", "outside-correlation")
+"""Refusals that may concern the way to complete conversion, and not what a size comes to."""
+
+
 def basis_of(problem: ReactorProblem) -> Basis:
     """Return what the size of a reactor is counted by: as stated, else as its rates count."""
     reactor = problem.reactor
@@ -83,8 +87,9 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
             return _observed(along_path.rated(problem, basis, size), before)
         except Refused as refused:
             # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
-            # the integrand is too rough for its panels; a march goes on.
-            if refused.faults[0].code != "integral-not-converged":
+            # the integrand is too rough for its panels, and complete conversion may lie beyond all
+            # temperatures, far from what the size comes to; a march goes on.
+            if refused.faults[0].code not in _OF_THE_LIMIT:
                 raise
     return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
 
@@ -158,6 +163,13 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
     reactor = problem.reactor
     if not isinstance(reactor, PackedBed) or not reactor.pressure_drop:
         return None
+    if problem.feed.pressure is None:
+        raise refuse(
+            "condition-missing",
+            ("feed", "pressure"),
+            "the pressure drop of the bed is taken off the pressure of the feed, which is not"
+            " stated; state it, or leave 'pressure_drop' out",
+        )
     length = None
     if size is not None:
         found = bed_length(reactor, basis, size)
