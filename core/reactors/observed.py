@@ -97,6 +97,7 @@ class Observer:
         feed = balances.feed
         start = State(balances, list(y[0]))
         t = y[:, layout.temperature] if layout.temperature is not None else start.temperature
+        pressure: FloatArray | None
         if layout.pressure is not None:
             pressure = y[:, layout.pressure]
         elif start.held:

@@ -28,7 +28,6 @@ from core.reactors.sizing_tanks import tanks_for
 from core.reactors.tanks import through_tanks
 from core.reactors.telling import Course
 
-
 _OF_THE_LIMIT = ("integral-not-converged", "rate-not-finite", "outside-correlation")
 """Refusals that may concern the way to complete conversion, and not what a size comes to."""
 

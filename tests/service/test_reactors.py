@@ -430,6 +430,10 @@ def test_a_bed_of_liquid_loses_pressure(client):
     along = told["profile"]["columns"]
     share = np.array(along["volume"])
     assert_allclose(along["pressure"], 4 - share * 1338.8671875e-5, rtol=1e-9)
+    clean = {"pressure_drop": "2 mbar", "flow": "90 kg/h", "temperature": "20 degC",
+             "pressure": "1.02 bar", "molar_mass": "28.97 g/mol"}  # fmt: skip
+    by_gas = changed(request, reactor__clean_bed=clean)
+    assert_refused(post(client, "rating", by_gas), 422, "field-not-used", "/reactor/clean_bed")
     low = changed(request, feed__pressure="5 mbar")
     assert_refused(post(client, "rating", low), 422, "pressure-exhausted", "/reactor")
     for question in ("rating", "volume"):
