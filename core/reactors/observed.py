@@ -97,14 +97,13 @@ class Observer:
         feed = balances.feed
         start = State(balances, list(y[0]))
         t = y[:, layout.temperature] if layout.temperature is not None else start.temperature
-        if feed.phase != "gas":
-            pressure = None if feed.pressure is None else np.full(n, feed.pressure)
+        pressure: FloatArray | None
+        if layout.pressure is not None:
+            pressure = y[:, layout.pressure]
         elif start.held:
             pressure = held
-        elif layout.pressure is not None:
-            pressure = y[:, layout.pressure]
         else:
-            pressure = np.full(n, feed.pressure)
+            pressure = None if feed.pressure is None else np.full(n, feed.pressure)
         return Seen(
             x=x,
             flows=flows,

@@ -33,6 +33,8 @@ from core.reactors.telling import Course
 _VALUES_A_CALL = 20
 """Of a rate along a path, which is evaluated at many places at once: as much work as one of a
 march."""
+_OF_THE_LIMIT = ("integral-not-converged", "rate-not-finite", "outside-correlation")
+"""Refusals that may concern the way to complete conversion, and not what a size comes to."""
 
 
 def basis_of(problem: ReactorProblem) -> Basis:
@@ -97,8 +99,9 @@ def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = F
             return _observed(course, before)
         except Refused as refused:
             # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
-            # the integrand is too rough for its panels; a march goes on.
-            if refused.faults[0].code != "integral-not-converged":
+            # the integrand is too rough for its panels, and complete conversion may lie beyond all
+            # temperatures, far from what the size comes to; a march goes on.
+            if refused.faults[0].code not in _OF_THE_LIMIT:
                 raise
     return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
 
@@ -172,6 +175,13 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
     reactor = problem.reactor
     if not isinstance(reactor, PackedBed) or not reactor.pressure_drop:
         return None
+    if problem.feed.pressure is None:
+        raise refuse(
+            "condition-missing",
+            ("feed", "pressure"),
+            "the pressure drop of the bed is taken off the pressure of the feed, which is not"
+            " stated; state it, or leave 'pressure_drop' out",
+        )
     length = None
     if size is not None:
         found = bed_length(reactor, basis, size)

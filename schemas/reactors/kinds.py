@@ -257,6 +257,13 @@ def _read_bed(
                 "a measured drop scales the pressure drop, which is not asked for: state"
                 " 'pressure_drop' as true, or leave it out",
             )
+        if at.feed is not None and at.feed.phase == "liquid":
+            reader.fault(
+                "field-not-used",
+                place,
+                "the drop of a clean bed is read as that of a gas, and the feed is a liquid; leave"
+                " it out",
+            )
         with at.aside():
             clean = _read_clean_bed(said["clean_bed"], place, about, at)
     if len(reader.faults) > kept:

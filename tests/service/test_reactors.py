@@ -390,3 +390,55 @@ def notes_of_solutions(client, request):
 def test_no_zero_below_zero(answers):
     assert "-0.0," not in json.dumps(answers)
     assert "-0.0}" not in json.dumps(answers)
+
+
+def test_a_bed_of_liquid_loses_pressure(client):
+    request = {
+        "species": {name: {"molar_mass": "60 g/mol"} for name in "AR"},
+        "reactions": [
+            {
+                "equation": "A -> R",
+                "rate": {
+                    "per": "bed-volume",
+                    "driving": "concentration",
+                    "orders": {"A": 1},
+                    "constant": "0.4 1/h",
+                },
+            }
+        ],
+        "key": "A",
+        "feed": {
+            "phase": "liquid",
+            "pressure": "4 bar",
+            "flows": {"A": "3600 kg/h"},
+            "volumetric_flow": "3.6 m3/h",
+        },
+        "reactor": {
+            "kind": "packed-bed",
+            "volume": "1 m3",
+            "cross_section": "1 m2",
+            "particle_diameter": "0.8 mm",
+            "void_fraction": 0.4,
+            "viscosity": "1 mPa s",
+            "pressure_drop": True,
+        },
+        "report_in": {"pressure_difference": "Pa"},
+    }
+    told = result(client, "rating", request)
+    # As in tests/published, by Ergun; half of it on half of the way.
+    assert_allclose(value(told["pressure_drop"], "Pa"), 1338.8671875, rtol=1e-9)
+    along = told["profile"]["columns"]
+    share = np.array(along["volume"])
+    assert_allclose(along["pressure"], 4 - share * 1338.8671875e-5, rtol=1e-9)
+    clean = {"pressure_drop": "2 mbar", "flow": "90 kg/h", "temperature": "20 degC",
+             "pressure": "1.02 bar", "molar_mass": "28.97 g/mol"}  # fmt: skip
+    by_gas = changed(request, reactor__clean_bed=clean)
+    assert_refused(post(client, "rating", by_gas), 422, "field-not-used", "/reactor/clean_bed")
+    low = changed(request, feed__pressure="5 mbar")
+    assert_refused(post(client, "rating", low), 422, "pressure-exhausted", "/reactor")
+    for question in ("rating", "volume"):
+        unknown = changed(request, feed__pressure=...)
+        if question == "volume":
+            unknown = changed(unknown, reactor__volume=..., target={"conversion": 0.1})
+        refused = post(client, question, unknown)
+        assert_refused(refused, 422, "condition-missing", "/feed/pressure")
