@@ -19,7 +19,6 @@ from scipy.optimize import minimize_scalar
 
 from core.errors import Amount, Fact, Fault, Refused
 from core.reactors.along_path import has_path
-from core.reactors.marching import Work
 from core.reactors.mixing import at_own_compressibility
 from core.reactors.observed import Fed
 from core.reactors.problem import (
@@ -43,6 +42,7 @@ from core.reactors.steady_states import steady_states
 from core.reactors.tanks import through_tanks
 from core.reactors.telling import outlet_of, tell
 from core.reactors.trains import end_of_train, gap_at
+from core.reactors.work import Work
 from core.streams.stream import Stream
 
 TRIES = 41
@@ -186,11 +186,10 @@ class _Search:
         if isinstance(reactor, Train):
             return [end_of_train(problem, self.work)]
         if isinstance(reactor, StirredTank) and reactor.size is not None:
-            found, _ = steady_states(problem, reactor.size)
-            self.work.take(50 * len(found.states))
+            found, _ = steady_states(problem, reactor.size, work=self.work)
             streams = [state.outlet for state in found.states]
         else:
-            streams = [outlet_of(run(problem, fed_of(problem), self.work))]
+            streams = [outlet_of(run(problem, fed_of(problem), self.work, whole=False))]
         fed = fed_of(problem).flows
         if isinstance(reactor, Batch) and reactor.fed is not None and reactor.size is not None:
             fed = fed + reactor.fed.stream.flows * min(reactor.size.value, reactor.fed.until)

@@ -11,7 +11,7 @@ from core.reactors import along_path, recycle
 from core.reactors.balances import Balances, Basis
 from core.reactors.fed_batch import accumulation_of
 from core.reactors.friction import Friction, bed_length, friction_of
-from core.reactors.marching import Marcher, Work
+from core.reactors.marching import Marcher
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (
     Batch,
@@ -27,6 +27,7 @@ from core.reactors.problem import (
 from core.reactors.sizing_tanks import tanks_for
 from core.reactors.tanks import through_tanks
 from core.reactors.telling import Course
+from core.reactors.work import ALONG_PATH, Work
 
 
 def basis_of(problem: ReactorProblem) -> Basis:
@@ -47,7 +48,7 @@ def fed_of(problem: ReactorProblem) -> Fed:
     return Fed(np.asarray(problem.feed.flows, dtype=float))
 
 
-def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
+def run(problem: ReactorProblem, before: Fed, work: Work, *, whole: bool = True) -> Course:
     """Return the course through a reactor of the size that is stated.
 
     Parameters
@@ -57,11 +58,13 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
     before : Fed
         What was fed up to its inlet.
     work : Work
+    whole : bool
+        Whether to tell what accumulates in a fed batch, or only what comes out.
 
     Raises
     ------
     Refused
-        ``size-not-stated``, and what each kind refuses.
+        ``size-not-stated``, ``key-absent``, and what each kind refuses.
     """
     reactor = problem.reactor
     assert not isinstance(reactor, Train)
@@ -74,11 +77,13 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
         )
     basis, size = basis_of(problem), reactor.size.value
     check_feed(problem)
+    _check_key(problem, before)
     if isinstance(reactor, StirredTank | TanksInSeries):
         return through_tanks(problem, basis, before, work, size)
     if isinstance(reactor, RecyclePlugFlow):
         return recycle.around(problem, basis, before, work, size=size)
     if along_path.has_path(problem):
+        work.spend(ALONG_PATH[problem.thermal.mode])
         try:
             return _observed(along_path.rated(problem, basis, size), before)
         except Refused as refused:
@@ -86,7 +91,8 @@ def run(problem: ReactorProblem, before: Fed, work: Work) -> Course:
             # the integrand is too rough for its panels; a march goes on.
             if refused.faults[0].code != "integral-not-converged":
                 raise
-    return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
+    course = _marcher(problem, basis, before, work, size).through(size)
+    return _with_accumulation(problem, course) if whole else course
 
 
 def size_for(problem: ReactorProblem, target: Target, before: Fed, work: Work) -> Course:
@@ -103,10 +109,11 @@ def size_for(problem: ReactorProblem, target: Target, before: Fed, work: Work) -
     Raises
     ------
     Refused
-        ``target-out-of-reach``, and what each kind refuses.
+        ``target-out-of-reach``, ``key-absent``, and what each kind refuses.
     """
     reactor, basis = problem.reactor, basis_of(problem)
     check_feed(problem)
+    _check_key(problem, before)
     own_target(problem, before, target)
     if isinstance(reactor, StirredTank | TanksInSeries):
         return tanks_for(problem, basis, before, work, target)
@@ -158,6 +165,13 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
     reactor = problem.reactor
     if not isinstance(reactor, PackedBed) or not reactor.pressure_drop:
         return None
+    if problem.feed.pressure is None:
+        raise refuse(
+            "condition-missing",
+            ("feed", "pressure"),
+            "the pressure drop is taken from the pressure at the inlet; state the feed's, or leave"
+            " 'pressure_drop' out",
+        )
     length = None
     if size is not None:
         found = bed_length(reactor, basis, size)
@@ -173,14 +187,29 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
     return friction_of(reactor, mass_flow, length)
 
 
+def _check_key(problem: ReactorProblem, before: Fed) -> None:
+    """Refuse a key that is fed nowhere: of nothing there is no conversion."""
+    reactor, key = problem.reactor, problem.key
+    fed = float(before.flows[key])
+    if isinstance(reactor, Batch) and reactor.fed is not None:
+        fed += float(reactor.fed.stream.flows[key])
+    if not fed > 0:
+        raise refuse(
+            "key-absent",
+            ("key",),
+            "none of the key {substance} is fed, so that it has no conversion; choose a substance"
+            " that is fed",
+            substance=problem.reactions.names[key],
+        )
+
+
 def check_feed(problem: ReactorProblem) -> None:
     """Refuse a feed that does not fit the reactor, or has no volume.
 
     Raises
     ------
     Refused
-        ``feed-does-not-fit-reactor``, ``key-absent``, ``condition-missing``,
-        ``phase-vanishes``.
+        ``feed-does-not-fit-reactor``, ``condition-missing``, ``phase-vanishes``.
     """
     feed, reactor = problem.feed, problem.reactor
     batch = isinstance(reactor, Batch)

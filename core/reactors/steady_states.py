@@ -38,6 +38,7 @@ from core.reactors.problem import (
 from core.reactors.reacted import HeatCurves, SteadyState, SteadyStates
 from core.reactors.rest_states import RestStates, rest_states
 from core.reactors.tank_balance import TankBalance, TankHeat
+from core.reactors.work import Work
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
 
@@ -50,7 +51,9 @@ _MORE_STARTS = 12
 """From which states beside the branch are looked for."""
 
 
-def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalance:
+def tank_balance(
+    problem: ReactorProblem, feed: Stream, size: Size, work: Work | None = None
+) -> TankBalance:
     """Return the balances of one tank, of one case.
 
     Parameters
@@ -60,6 +63,7 @@ def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalan
     feed : Stream
         What enters, mol/s.
     size : Size
+    work : Work, optional
 
     Raises
     ------
@@ -86,6 +90,7 @@ def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalan
         space_time=np.atleast_1d(size.value / v),
         heat=None if isinstance(thermal, Isothermal) else _tank_heat(problem, within),
         reversible=any(law.reverse is not None for law in problem.laws),
+        work=work,
     )
 
 
@@ -118,7 +123,12 @@ def _tank_heat(problem: ReactorProblem, balances: Balances) -> TankHeat:
 
 
 def steady_states(
-    problem: ReactorProblem, size: Size, feed: Stream | None = None, *, curves: bool = False
+    problem: ReactorProblem,
+    size: Size,
+    feed: Stream | None = None,
+    *,
+    curves: bool = False,
+    work: Work | None = None,
 ) -> tuple[SteadyStates, tuple[Note, ...]]:
     """Return the steady states of one tank, and what there is to say of them.
 
@@ -131,6 +141,8 @@ def steady_states(
         What enters, where it is not the problem's own feed.
     curves : bool
         Whether to give what one reaction gives off and what leaves over temperature.
+    work : Work, optional
+        What it may take.
 
     Returns
     -------
@@ -143,10 +155,11 @@ def steady_states(
     ------
     Refused
         As :func:`tank_balance`; ``outside-correlation`` where the only states lie beyond
-        the temperatures that the heat capacities reach; ``steady-state-not-found``.
+        the temperatures that the heat capacities reach; ``steady-state-not-found``;
+        ``compute-budget``.
     """
     feed = problem.feed if feed is None else feed
-    balance = tank_balance(problem, feed, size)
+    balance = tank_balance(problem, feed, size, work)
     _check_unreacted(balance)
     if len(balance.nu) > 1:
         states = _searched(problem, feed, balance)
@@ -154,7 +167,7 @@ def steady_states(
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
     if not len(found.case):
-        raise _beyond(balance)
+        raise _not_found() if balance.heat is None else _beyond(balance)
     states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))
     complete = bool(found.complete[0]) and not bool(found.cut[0])
     heat_curves = None
@@ -212,6 +225,7 @@ def sizes_for(
     near: Size,
     quantity: Callable[[FloatArray, FloatArray | None, FloatArray], FloatArray],
     target: float,
+    work: Work | None = None,
 ) -> tuple[tuple[Size, SteadyState], ...]:
     """Return all sizes of a tank at which a quantity meets a target, on one branch of states.
 
@@ -227,13 +241,14 @@ def sizes_for(
     quantity : callable
         Of flows, shape (m, S), temperatures, shape (m,), or None, and sizes, shape (m,).
     target : float
+    work : Work, optional
 
     Returns
     -------
     tuple of (Size, SteadyState)
         In the order of the branch.
     """
-    balance = tank_balance(problem, feed, near)
+    balance = tank_balance(problem, feed, near, work)
     _check_unreacted(balance)
     network = Network(balance)
     case: IntArray = np.zeros(1, dtype=np.intp)

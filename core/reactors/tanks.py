@@ -8,12 +8,12 @@ import numpy as np
 
 from core.errors import Note
 from core.reactors.balances import Balances, Basis
-from core.reactors.marching import Work
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import Exchange, ReactorProblem, Size, StirredTank, TanksInSeries
 from core.reactors.reacted import StageReached, SteadyState, SteadyStates
 from core.reactors.steady_states import steady_states
 from core.reactors.telling import Course, sizes_of
+from core.reactors.work import Work
 from core.streams.stream import Stream
 
 METHOD_ONE = (
@@ -73,7 +73,7 @@ def through_tanks(
     for k in range(number):
         inside = replace(problem, feed=feed, reactor=StirredTank())
         wanted = near if k == number - 1 else None
-        tank = _at_rest(inside, basis, at, size / number, wanted, curves=number == 1)
+        tank = _at_rest(inside, basis, at, work, size / number, wanted, curves=number == 1)
         volume, mass, _ = sizes_of(problem, basis, size / number)
         flow = tank.outlet.volumetric_flow
         if volume is not None and flow is not None:
@@ -99,7 +99,6 @@ def through_tanks(
                 )
             )
         at, feed = Fed(at.flows, at_outlet), tank.outlet
-        work.take(len(tank.states.states))
     assert told is not None
     balances = Balances(replace(last, feed=problem.feed), basis, problem.feed)
     observer = Observer(balances, before)
@@ -120,12 +119,13 @@ def _at_rest(
     problem: ReactorProblem,
     basis: Basis,
     before: Fed,
+    work: Work,
     size: float,
     near: float | None,
     *,
     curves: bool,
 ) -> _Tank:
-    found, notes = steady_states(problem, Size(basis, size), curves=curves)
+    found, notes = steady_states(problem, Size(basis, size), curves=curves, work=work)
     states = tuple(_of_all_fed(problem, before, state) for state in found.states)
     described = found.described
     if near is not None:

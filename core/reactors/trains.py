@@ -10,7 +10,6 @@ from core.arrays import FloatArray
 from core.errors import Fact, Fault, Note, Refused, refuse
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
-from core.reactors.marching import Work
 from core.reactors.mixing import at_temperature, heated, mixed, sensible_duty
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (
@@ -33,9 +32,16 @@ from core.reactors.scanning import first_size
 from core.reactors.sizing_tanks import tank_scale
 from core.reactors.solving import basis_of, fed_of, run, size_for
 from core.reactors.telling import assumptions, outlet_of, remarks, tell
+from core.reactors.work import Work
 from core.streams.stream import Stream
 
 METHOD = "stage by stage"
+_NO_RISE = Note(
+    "heat-not-known",
+    "no adiabatic rise is given: streams join or leave the train, so that its outlet is not what"
+    " the feed alone would come to",
+    subject=("reactor", "stages"),
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -172,6 +178,16 @@ def _train(problem: ReactorProblem) -> Train:
 
 
 def _start(problem: ReactorProblem) -> _At:
+    key = problem.key
+    if not problem.feed.flows[key] > 0:
+        raise refuse(
+            "key-absent",
+            ("key",),
+            "none of the key {substance} is in the feed of the train, so that its conversion is"
+            " not defined along it; choose a substance that is fed there, or count the stream that"
+            " brings it to the feed",
+            substance=problem.reactions.names[key],
+        )
     return _At(problem.feed, fed_of(problem), np.zeros(len(problem.laws)))
 
 
@@ -309,7 +325,8 @@ def _told(problem: ReactorProblem, end: _At) -> Reacted:
     for each in end.reacted:
         for note in each.notes:
             notes.setdefault((note.code, note.detail, note.subject), note)
-    for note in (*found.notes, *remarks(problem, end.stream)):
+    own = [_NO_RISE] if heat is not None and mixes else []
+    for note in (*found.notes, *own, *remarks(problem, end.stream)):
         notes.setdefault((note.code, note.detail, note.subject), note)
     hot = [r.hottest for r in end.reacted if r.hottest is not None]
     volume = None if None in volumes else float(sum(v for v in volumes if v is not None))
