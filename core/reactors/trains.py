@@ -29,8 +29,8 @@ from core.reactors.problem import (
 )
 from core.reactors.reacted import Reacted, StageReached
 from core.reactors.scanning import first_size
-from core.reactors.sizing_tanks import tank_scale
 from core.reactors.solving import basis_of, fed_of, run, size_for
+from core.reactors.tank.sizing_tanks import tank_scale
 from core.reactors.telling import assumptions, outlet_of, remarks, tell
 from core.reactors.work import Work
 from core.streams.stream import Stream

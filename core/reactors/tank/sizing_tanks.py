@@ -9,9 +9,10 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused
-from core.reactors import along_path, stirred_tank
 from core.reactors.balances import Balances, Basis, rate_factor
 from core.reactors.observed import Fed, Observer
+from core.reactors.one_reaction import along_path, stirred_tank
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
 from core.reactors.problem import (
     Adiabatic,
     ConversionTarget,
@@ -23,9 +24,8 @@ from core.reactors.problem import (
     Target,
 )
 from core.reactors.scanning import first_size
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.steady_states import sizes_for
-from core.reactors.tanks import through_tanks
+from core.reactors.tank.steady_states import sizes_for
+from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
 from core.reactors.work import Work
 
