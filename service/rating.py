@@ -9,6 +9,7 @@ from flask import Blueprint
 
 from core.reactors.rating import rating
 from core.reactors.sensitivity import sensitivities
+from core.reactors.work import Work
 from schemas.answer import Answer
 from schemas.contract import operation
 from schemas.reactors import rating as wire
@@ -22,8 +23,11 @@ def answer(document: Any) -> Answer:
     """Return what comes out of a reactor of a known size."""
     asked, edge = wire.read(document)
     with edge.locating():
-        reacted = rating(asked.problem, asked.points)
+        work = Work()
+        reacted = rating(asked.problem, asked.points, work)
         if asked.sensitivities:
-            found = sensitivities(asked.problem, reacted, rating)
+            found = sensitivities(
+                asked.problem, reacted, lambda changed: rating(changed, work=work)
+            )
             reacted = replace(reacted, sensitivities=found)
     return wire.write(asked, reacted, edge)

@@ -9,6 +9,7 @@ from flask import Blueprint
 
 from core.reactors.sensitivity import sensitivities
 from core.reactors.volume import volume
+from core.reactors.work import Work
 from schemas.answer import Answer
 from schemas.contract import operation
 from schemas.reactors import volume as wire
@@ -23,10 +24,11 @@ def answer(document: Any) -> Answer:
     question, edge = wire.read(document)
     asked = question.asked
     with edge.locating():
-        reacted = volume(asked.problem, question.target, asked.points)
+        work = Work()
+        reacted = volume(asked.problem, question.target, asked.points, work)
         if asked.sensitivities:
             found = sensitivities(
-                asked.problem, reacted, lambda changed: volume(changed, question.target)
+                asked.problem, reacted, lambda changed: volume(changed, question.target, work=work)
             )
             reacted = replace(reacted, sensitivities=found)
     return wire.write(question, reacted, edge)

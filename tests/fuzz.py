@@ -507,8 +507,8 @@ def answer_faults(route: str, answer: Json, document: Json) -> list[tuple[str, s
 
     walk(result, "")
     codes = {note["code"] for note in (*answer["notes"], *answer["assumed"])}
-    for one in result.get("solutions", ()):
-        codes |= {note["code"] for note in one["notes"]}
+    # An operating point has notes of its own.
+    codes |= {note["code"] for each in result.get("solutions", ()) for note in each["notes"]}
     for path in nulls:
         name = path.rsplit("/", 1)[1]
         if name in _NULLS or "/reconciliation/readings/" in path:

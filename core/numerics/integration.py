@@ -38,7 +38,7 @@ MOST_EVALUATIONS = 200_000
 _TIGHTER = 0.1
 _CORRECTIONS = 6
 _EPS = float(np.finfo(float).eps)
-_DEARER = 8  # an evaluation, where arrays of one case go around it
+DEARER = 8  # an evaluation, where arrays of one case go around it
 _STEPS = 2**30  # of LSODA between two abscissae: it is evaluations that are counted
 _NO_WAY = 1e-6  # of where it is: gained with half of the evaluations, it does not get on
 _CLOSE = 0.6  # of what a value sinks to at the least looked at: beyond, it is looked at closely
@@ -97,6 +97,8 @@ class March:
         Whether one did.
     evaluations : int
         Of the right-hand side.
+    on_arrays : int
+        How many of them were made around arrays of one case, which are dearer.
     error : ndarray, shape (m, n), optional
         Measured: how far the states moved when the tolerance was made ten times as tight. It
         bounds the error of ``y``, which are the states of the tighter run.
@@ -110,6 +112,7 @@ class March:
     crossings: tuple[Crossing, ...]
     terminated: bool
     evaluations: int
+    on_arrays: int = 0
     error: FloatArray | None = None
     error_end: FloatArray | None = None
 
@@ -242,6 +245,7 @@ class _Case:
             walk.crossings,
             walk.terminated,
             evaluations + walk.evaluations,
+            walk.evaluations,
         )
 
     def slopes_or_none(self, x: float, y: list[float]) -> Sequence[float] | None:
@@ -379,7 +383,7 @@ class _Run:
                 walk = _walked(self.case, np.array([begin, span.end]), y[row], span.sides)
             self.evaluations += walk.evaluations
             walked += walk.evaluations
-            if _DEARER * walked > self.case.most:
+            if DEARER * walked > self.case.most:
                 self.looking, self.furthest = True, walk.end
                 raise _Spent
             crossings.extend(walk.crossings)
@@ -506,6 +510,8 @@ def _met(case: _Case, span: _Span, y0: FloatArray) -> _Walk | None:
     f = Slopes(_on_arrays(case, len(y0)), np.zeros(1, dtype=np.intp))
     x, y = np.array([span.begin]), y0[:, None]
     tolerance = Tolerance(case.rtol, case.atol[:, None])
+    if span.end == span.begin:
+        return None
     rise = (after - before) / (span.end - span.begin)
     h, evaluations = -before / rise, 1
     with np.errstate(all="ignore"):
@@ -519,7 +525,9 @@ def _met(case: _Case, span: _Span, y0: FloatArray) -> _Walk | None:
             value = case.value(event, at, state.tolist())
             ahead = 1e-6 * (span.end - span.begin)
             further = (state + ahead * step.slopes[:, 0]).tolist()
-            slope = (case.value(event, at + ahead, further) - value) / ahead
+            slope = (case.value(event, at + ahead, further) - value) / ahead if ahead else 0.0
+            if slope == 0:
+                return None
             move = value / slope
             if not 0.0 <= (h - move) / (span.end - span.begin) <= 1.0 or slope * rise <= 0:
                 return None
@@ -556,7 +564,7 @@ def _walked(case: _Case, x: FloatArray, y0: FloatArray, known: IntArray | None =
             rtol=case.rtol,
             events=events,
             sides=sides[:, None],
-            most=max(case.most // _DEARER, 1),
+            most=max(case.most // DEARER, 1),
             subject=case.subject,
             dimension=case.dimension,
         )

@@ -311,6 +311,12 @@ class StraightLine:
                 stack.extend(rest)
         return sorted(seen)
 
+    @cached_property
+    def operations(self) -> int:
+        """How many operations an evaluation takes."""
+        entries = self.tape.entries
+        return sum(entries[at][0] not in ("input", "number") for at in self._needed)
+
     def derivatives(self, of: Sequence[int] | None = None) -> StraightLine:
         """Return the calculation of the derivatives, row by row: d output / d input.
 

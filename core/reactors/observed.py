@@ -148,7 +148,9 @@ class Observer:
         at = key if brought.shape[1] > 1 else 0
         gone = feed.flows[key] + brought[:, at] - flows[:, key] + before.consumed
         fed: FloatArray = before.flows[key] + brought[:, at]
-        result: FloatArray = gone / fed
+        # Before any key is fed to a batch nothing of it has reacted.
+        none = fed == 0
+        result: FloatArray = np.where(none, 0.0, gone / np.where(none, 1.0, fed))
         return result
 
     def extents(self, x: FloatArray, flows: FloatArray) -> FloatArray | None:

@@ -18,7 +18,6 @@ import numpy as np
 from scipy.optimize import minimize_scalar
 
 from core.errors import Amount, Fact, Fault, Refused
-from core.reactors.march.marching import Work
 from core.reactors.mixing import at_own_compressibility
 from core.reactors.observed import Fed
 from core.reactors.one_reaction.along_path import has_path
@@ -40,9 +39,10 @@ from core.reactors.reacted import OperatingPoints, Optimum, Reacted, Solution, S
 from core.reactors.scanning import bracketed
 from core.reactors.solving import basis_of, fed_of, run
 from core.reactors.tank.steady_states import steady_states
-from core.reactors.tank.tanks import check_budget, through_tanks
+from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import outlet_of, tell
 from core.reactors.trains import end_of_train, gap_at
+from core.reactors.work import Work
 from core.streams.stream import Stream
 
 TRIES = 41
@@ -189,14 +189,11 @@ class _Search:
         if isinstance(reactor, Train):
             return [end_of_train(problem, self.work)]
         if isinstance(reactor, StirredTank) and reactor.size is not None:
-            check_budget(self.work)
-            found, _ = steady_states(
-                problem, reactor.size, near=self._near(value), spend=self.work.take
-            )
+            found, _ = steady_states(problem, reactor.size, near=self._near(value), work=self.work)
             self.states[value] = found.states
             streams = [state.outlet for state in found.states]
         else:
-            streams = [outlet_of(run(problem, fed_of(problem), self.work, end_alone=True))]
+            streams = [outlet_of(run(problem, fed_of(problem), self.work, whole=False))]
         fed = fed_of(problem).flows
         if isinstance(reactor, Batch) and reactor.fed is not None and reactor.size is not None:
             fed = fed + reactor.fed.stream.flows * min(reactor.size.value, reactor.fed.until)

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from core.reactors.march.marching import Work
 from core.reactors.problem import ReactorProblem, Train
 from core.reactors.reacted import Reacted
 from core.reactors.solving import fed_of, run
 from core.reactors.telling import tell
 from core.reactors.trains import run_train
+from core.reactors.work import Work
 
 
 def rating(problem: ReactorProblem, points: int = 0, work: Work | None = None) -> Reacted:

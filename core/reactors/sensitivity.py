@@ -37,12 +37,19 @@ def sensitivities(problem: ReactorProblem, reacted: Reacted, ask: Asked) -> tupl
     -------
     tuple of Sensitivity
         A change that the question refuses is left out.
+
+    Raises
+    ------
+    Refused
+        ``compute-budget``.
     """
     found = []
     for subject, change, changed in _changes(problem):
         try:
             up, down = ask(changed(0.5)), ask(changed(-0.5))
-        except Refused:
+        except Refused as refused:
+            if refused.faults[0].code == "compute-budget":
+                raise
             continue
         above, below = _members(up), _members(down)
         effects = {

@@ -11,7 +11,7 @@ from core.reactors.balances import Balances, Basis
 from core.reactors.friction import Friction, bed_length, friction_of
 from core.reactors.march import recycle
 from core.reactors.march.fed_batch import accumulation_of
-from core.reactors.march.marching import Marcher, Work
+from core.reactors.march.marching import Marcher
 from core.reactors.observed import Fed, Observer
 from core.reactors.one_reaction import along_path
 from core.reactors.problem import (
@@ -29,10 +29,8 @@ from core.reactors.problem import (
 from core.reactors.tank.sizing_tanks import tanks_for
 from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
+from core.reactors.work import ALONG_PATH, Work
 
-_VALUES_A_CALL = 20
-"""Of a rate along a path, which is evaluated at many places at once: as much work as one of a
-march."""
 _OF_THE_LIMIT = ("integral-not-converged", "rate-not-finite", "outside-correlation")
 """Refusals that may concern the way to complete conversion, and not what a size comes to."""
 
@@ -55,7 +53,7 @@ def fed_of(problem: ReactorProblem) -> Fed:
     return Fed(np.asarray(problem.feed.flows, dtype=float))
 
 
-def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = False) -> Course:
+def run(problem: ReactorProblem, before: Fed, work: Work, *, whole: bool = True) -> Course:
     """Return the course through a reactor of the size that is stated.
 
     Parameters
@@ -65,13 +63,14 @@ def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = F
     before : Fed
         What was fed up to its inlet.
     work : Work
-    end_alone : bool
-        Whether what leaves is all that is asked for.
+    whole : bool
+        Whether all of it is asked for, or only what comes out: without what accumulates in a
+        fed batch, and without the places between.
 
     Raises
     ------
     Refused
-        ``size-not-stated``, and what each kind refuses.
+        ``size-not-stated``, ``key-absent``, and what each kind refuses.
     """
     reactor = problem.reactor
     assert not isinstance(reactor, Train)
@@ -84,18 +83,19 @@ def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = F
         )
     basis, size = basis_of(problem), reactor.size.value
     check_feed(problem)
+    _check_key(problem, before)
     if isinstance(reactor, StirredTank | TanksInSeries):
         return through_tanks(problem, basis, before, work, size)
     if isinstance(reactor, RecyclePlugFlow):
         return recycle.around(problem, basis, before, work, size=size)
     # Where many are tried one after the other a march does, which is quicker where the
     # temperature must be found at every place of a path.
-    tried = end_alone and isinstance(problem.thermal, Adiabatic)
+    tried = not whole and isinstance(problem.thermal, Adiabatic)
     if along_path.has_path(problem) and not tried:
+        work.spend(ALONG_PATH[problem.thermal.mode])
         try:
-            places = 2 if end_alone else along_path.PLACES
+            places = along_path.PLACES if whole else 2
             course = along_path.rated(problem, basis, size, places)
-            work.take(course.evaluations // _VALUES_A_CALL)
             return _observed(course, before)
         except Refused as refused:
             # Beside the equilibrium of an adiabatic way, and where a heat capacity's pieces meet,
@@ -103,7 +103,8 @@ def run(problem: ReactorProblem, before: Fed, work: Work, *, end_alone: bool = F
             # temperatures, far from what the size comes to; a march goes on.
             if refused.faults[0].code not in _OF_THE_LIMIT:
                 raise
-    return _with_accumulation(problem, _marcher(problem, basis, before, work, size).through(size))
+    course = _marcher(problem, basis, before, work, size).through(size)
+    return _with_accumulation(problem, course) if whole else course
 
 
 def size_for(problem: ReactorProblem, target: Target, before: Fed, work: Work) -> Course:
@@ -120,10 +121,11 @@ def size_for(problem: ReactorProblem, target: Target, before: Fed, work: Work) -
     Raises
     ------
     Refused
-        ``target-out-of-reach``, and what each kind refuses.
+        ``target-out-of-reach``, ``key-absent``, and what each kind refuses.
     """
     reactor, basis = problem.reactor, basis_of(problem)
     check_feed(problem)
+    _check_key(problem, before)
     own_target(problem, before, target)
     if isinstance(reactor, StirredTank | TanksInSeries):
         return tanks_for(problem, basis, before, work, target)
@@ -197,14 +199,29 @@ def _friction(problem: ReactorProblem, basis: Basis, size: float | None) -> Fric
     return friction_of(reactor, mass_flow, length)
 
 
+def _check_key(problem: ReactorProblem, before: Fed) -> None:
+    """Refuse a key that is fed nowhere: of nothing there is no conversion."""
+    reactor, key = problem.reactor, problem.key
+    fed = float(before.flows[key])
+    if isinstance(reactor, Batch) and reactor.fed is not None:
+        fed += float(reactor.fed.stream.flows[key])
+    if not fed > 0:
+        raise refuse(
+            "key-absent",
+            ("key",),
+            "none of the key {substance} is fed, so that it has no conversion; choose a substance"
+            " that is fed",
+            substance=problem.reactions.names[key],
+        )
+
+
 def check_feed(problem: ReactorProblem) -> None:
     """Refuse a feed that does not fit the reactor, or has no volume.
 
     Raises
     ------
     Refused
-        ``feed-does-not-fit-reactor``, ``key-absent``, ``condition-missing``,
-        ``phase-vanishes``.
+        ``feed-does-not-fit-reactor``, ``condition-missing``, ``phase-vanishes``.
     """
     feed, reactor = problem.feed, problem.reactor
     batch = isinstance(reactor, Batch)

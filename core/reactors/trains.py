@@ -11,7 +11,6 @@ from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused, refuse
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
-from core.reactors.march.marching import Work
 from core.reactors.mixing import at_temperature, heated, mixed, sensible_duty
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (
@@ -34,6 +33,7 @@ from core.reactors.scanning import first_size
 from core.reactors.solving import basis_of, fed_of, run, size_for
 from core.reactors.tank.sizing_tanks import tank_scale
 from core.reactors.telling import assumptions, outlet_of, remarks, tell
+from core.reactors.work import Work
 from core.reactors.yields import yields_of
 from core.streams.stream import Stream
 
@@ -184,6 +184,16 @@ def _train(problem: ReactorProblem) -> Train:
 
 
 def _start(problem: ReactorProblem) -> _At:
+    key = problem.key
+    if not problem.feed.flows[key] > 0:
+        raise refuse(
+            "key-absent",
+            ("key",),
+            "none of the key {substance} is in the feed of the train, so that its conversion is"
+            " not defined along it; choose a substance that is fed there, or count the stream that"
+            " brings it to the feed",
+            substance=problem.reactions.names[key],
+        )
     return _At(problem.feed, fed_of(problem), np.zeros(len(problem.laws)))
 
 
@@ -215,7 +225,7 @@ def _pass(problem: ReactorProblem, stage: Stage, at: _At, points: int | None, wo
     where = ("reactor", "stages", stage.id)
     if isinstance(stage, ReactorStage):
         inside = _inside(problem, stage, at.stream)
-        course = run(inside, at.fed, work, end_alone=points is None)
+        course = run(inside, at.fed, work, whole=points is not None)
         if points is None:
             stream = outlet_of(course)
             return replace(at, stream=stream, fed=_fed_after(problem, at, stream))

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
-from core.reactors.march.marching import Work
 from core.reactors.problem import ReactorProblem, Target, Train
 from core.reactors.reacted import Reacted
 from core.reactors.solving import fed_of, size_for
 from core.reactors.telling import tell
 from core.reactors.trains import size_train
+from core.reactors.work import Work
 
 
 def volume(

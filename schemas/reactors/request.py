@@ -8,6 +8,7 @@ from typing import TypeVar
 
 from marshmallow import fields
 
+from core.errors import Refused
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.reaction_set import ReactionSet
@@ -137,7 +138,11 @@ def read_asked(
         return None, at
     heats = None
     if feed.temperature is not None:
-        heats = known_heats(reactions, feed.phase, places(reader, reactions), stated)
+        try:
+            heats = known_heats(reactions, feed.phase, places(reader, reactions), stated)
+        except Refused as refused:
+            reader.collect(refused)
+            return None, at
     problem = ReactorProblem(
         reactions=reactions,
         laws=tuple(law for law in laws if law is not None),

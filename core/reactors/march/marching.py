@@ -20,14 +20,15 @@ from scipy.optimize import brentq
 
 from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused, refuse
-from core.numerics.integration import MOST_EVALUATIONS, Event, March, march
-from core.numerics.straight_line import Number
+from core.numerics.integration import DEARER, Event, March, march
+from core.numerics.straight_line import Number, StraightLine
 from core.rates.rate_law import ByAffinity
 from core.reactors.balances import Balances, State
 from core.reactors.energetics import hottest_extents
 from core.reactors.observed import Observer
 from core.reactors.problem import Exchange, MaximumTarget, Target
 from core.reactors.telling import Course
+from core.reactors.work import RECORDING, Work, price_on_arrays, price_on_floats
 
 METHOD = (
     "the balances of moles, energy and pressure, integrated by LSODA at a relative tolerance of"
@@ -50,6 +51,7 @@ _STANDS = 1e-13  # of the total flow: less is no change
 _GUESSES = 25
 """Utility outlet temperatures that are tried before they are bracketed."""
 _OF_A_SHOT = 300  # evaluations, about, of one that is given up
+_SYSTEM = 2  # evaluations that the share of one place in the collocation is like
 _MESH = 5_000  # places, at most, where shooting does not resolve
 _SHOT = 1e-9  # K, to which the temperature that the utility leaves with is found
 _MET = 1e-5  # K, to which it then enters at its own
@@ -61,24 +63,6 @@ _FAR = 1e4  # K, that a shot misses by which leaves these
 
 LegEvent: TypeAlias = tuple[Event, ...]
 """An event while a batch is fed, and after; elsewhere one alone."""
-
-
-@dataclass(eq=False)
-class Work:
-    """Evaluations of the balances that one request may still take."""
-
-    left: int = MOST_EVALUATIONS + MOST_EVALUATIONS // 2
-    spent: int = field(default=0)
-
-    def take(self, evaluations: int) -> None:
-        """Count some."""
-        self.left -= evaluations
-        self.spent += evaluations
-
-    @property
-    def most(self) -> int:
-        """For one march."""
-        return max(1, min(self.left, MOST_EVALUATIONS))
 
 
 @dataclass(eq=False)
@@ -104,11 +88,27 @@ class Marcher:
         # A batch that is fed has one way of going while it is fed, and another after.
         legs = (True, False) if self.balances.fed is not None else (None,)
         self._legs = [replace(self.balances, feeding=leg) for leg in legs]
-        self._runs = [_beside_time(each, flow) for each in self._legs]
+        lines = [_beside_time(each, flow) for each in self._legs]
+        self._calls = 0
+        self._runs = [self._counted(line.on_floats()) for line in lines]
+        longest = max(line.operations for line in lines)
+        self._price = price_on_floats(longest)
+        self.work.take(RECORDING * longest)
         if self._against:
             self._runs = [self._within_sense(run) for run in self._runs]
         self._outset: FloatArray = np.array(self._runs[0](0.0, [*y.tolist(), 0.0]))
         self.events = self._ends()
+
+    def _counted(
+        self, run: Callable[[float, Sequence[float]], list[float]]
+    ) -> Callable[[float, Sequence[float]], list[float]]:
+        """Return slopes of a state that has the time spent as its last number."""
+
+        def slopes(at: float, state: Sequence[float]) -> list[float]:
+            self._calls += 1
+            return run(at, state[:-1])
+
+        return slopes
 
     def _within_sense(
         self, run: Callable[[float, Sequence[float]], list[float]]
@@ -178,6 +178,8 @@ class Marcher:
         fed = self.balances.fed
         if speed == 0:
             return 0.0
+        if not np.isfinite(speed):
+            return np.inf
         return (total if fed is None else max(total, float(fed.flows.sum()))) / speed
 
     def run(
@@ -205,18 +207,30 @@ class Marcher:
     def _one_leg(
         self, leg: int, x: FloatArray, y0: FloatArray, events: tuple[LegEvent, ...]
     ) -> March:
-        found = march(
-            self._runs[leg],
-            x,
-            y0,
-            atol=self._tolerances(self.balances.start()),
-            rtol=self.rtol,
-            events=(*(event for _, event, _ in self.events), *(event[leg] for event in events)),
-            most=self.work.most,
-            subject=self._subject,
-            dimension=self._dimension,
-        )
-        self.work.take(found.evaluations)
+        if self.work.left <= 0:
+            self.work.spend(0)
+        most, called = max(1, self.work.most // self._price), self._calls
+        try:
+            found = march(
+                self._runs[leg],
+                x,
+                y0,
+                atol=self._tolerances(self.balances.start()),
+                rtol=self.rtol,
+                events=(
+                    *(event for _, event, _ in self.events),
+                    *(event[leg] for event in events),
+                ),
+                most=most,
+                subject=self._subject,
+                dimension=self._dimension,
+            )
+        except Refused:
+            # On arrays, as it may have been, an evaluation is dearer.
+            self.work.take(self._price * min(most, DEARER * (self._calls - called)))
+            raise
+        on_floats = found.evaluations - found.on_arrays
+        self.work.take(self._price * (on_floats + DEARER * found.on_arrays))
         return found
 
     def through(self, size: float) -> Course:
@@ -347,12 +361,16 @@ class Marcher:
                 "nothing reacts at the inlet, because the rates are zero there; feed some of what"
                 " they depend on, or check their constants and units",
             )
+        if not np.isfinite(scale):
+            raise self._beyond_numbers()
         substances = self.balances.layout.substances
         x, y, timed = 0.0, y0, 0.0
         total = float(np.abs(y0[:substances]).sum())
         number = len(self.events)
         for decade in _DECADES:
             far = scale * 10.0**decade
+            if not np.isfinite(far):
+                break
             found = self.run(np.linspace(x, far, 11), y, (event,), timed=timed)
             if found.terminated:
                 last = found.crossings[-1]
@@ -371,6 +389,14 @@ class Marcher:
             if decade > 0 and change.max() <= _STANDS * total:
                 break
         raise self._out_of_reach(target, y, x)
+
+    def _beyond_numbers(self) -> Refused:
+        return refuse(
+            "march-not-finished",
+            ("reactions",),
+            "the rates at the inlet are beyond all numbers, or have no value; check the constants,"
+            " activation energies and orders, their units, and the feed's temperature",
+        )
 
     def _out_of_reach(self, target: Target, y: FloatArray, x: float) -> Refused:
         seen = self.observer.see(np.array([x]), y[None])
@@ -445,7 +471,7 @@ class Marcher:
             try:
                 known[leaving] = found = course(balances.start(leaving))
             except _Astray as shot:
-                self.work.take(_OF_A_SHOT)
+                self.work.spend(_OF_A_SHOT * self._price)
                 if shot.refusal is not None:
                     short.append(shot.refusal)
                 return _FAR if shot.hot else -_FAR
@@ -519,10 +545,11 @@ class Marcher:
         scale = np.maximum(np.abs(y0), 1e-6 * float(np.abs(y0[: balances.layout.substances]).sum()))
         slopes = balances.slopes.on_arrays()
 
+        each = price_on_arrays(balances.slopes.operations)
+
         def f(x: FloatArray, y: FloatArray) -> FloatArray:
-            self.work.take(len(x))
-            if self.work.left <= 0:
-                raise self._too_close()
+            # Beside it the collocation solves as many systems of the size of a state.
+            self.work.spend(each + _SYSTEM * len(x))
             rows = slopes(x * size, y * scale[:, None])
             found = np.stack([np.broadcast_to(np.asarray(r, dtype=float), len(x)) for r in rows])
             return found * size / scale[:, None]
@@ -643,13 +670,13 @@ class Marcher:
         )
 
 
-def _beside_time(balances: Balances, flow: bool) -> Callable[[float, Sequence[float]], list[float]]:
+def _beside_time(balances: Balances, flow: bool) -> StraightLine:
     """Return the slopes of a state and of the time that the fluid has spent."""
 
     def slopes(state: State) -> list[Number]:
         return [*balances.slopes_of(state), 1.0 / state.volume if flow else 0.0]
 
-    return balances.recorded(slopes, besides=1).on_floats()
+    return balances.recorded(slopes, besides=1)
 
 
 def _first_of(

@@ -20,7 +20,7 @@ from core.arrays import FloatArray
 from core.errors import Amount, Fact, Note, Refused, refuse
 from core.mole_account.extent_range import extent_limits
 from core.reactors.balances import Balances, Basis
-from core.reactors.march.marching import METHOD, Marcher, Work
+from core.reactors.march.marching import METHOD, Marcher
 from core.reactors.mixing import mixed
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (
@@ -33,6 +33,7 @@ from core.reactors.problem import (
     Target,
 )
 from core.reactors.telling import Course
+from core.reactors.work import Work
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import adiabatic_temperature
 

@@ -30,6 +30,7 @@ from core.arrays import BoolArray, FloatArray, IntArray
 from core.numerics.linear import solve_stack
 from core.numerics.straight_line import StraightLine
 from core.reactors.tank.tank_balance import TankBalance, rows_of
+from core.reactors.work import price_on_arrays
 
 ACCEPTED = 1e-11
 """Backward error."""
@@ -106,6 +107,10 @@ class Branch:
     whole: bool
 
 
+_AROUND = 20
+"""Evaluations that the linear algebra around one of a network takes as long as."""
+
+
 class Network:
     """The balances of a tank in scaled numbers: flows over all that is fed, hundreds of kelvins."""
 
@@ -118,6 +123,7 @@ class Network:
         rates, slopes = balance.rates, balance.slopes
         self.evaluations = 0
         self._line = StraightLine(rates.tape, rates.inputs, rates.outputs + slopes.outputs)
+        self._price = _AROUND + price_on_arrays(self._line.operations)
 
     @cached_property
     def start(self) -> FloatArray:
@@ -208,6 +214,8 @@ class Network:
 
     def _evaluate(self, y: FloatArray, ln_v: FloatArray, case: IntArray) -> _Values:
         balance, r, s = self.balance, self.reactions, self.substances
+        if balance.work is not None:
+            balance.work.spend(self._price)
         m, fed = len(case), self.fed[case]
         volume = balance.volume[case] * np.exp(ln_v)
         state = self.flows(y, case)

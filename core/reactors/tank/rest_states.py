@@ -36,6 +36,7 @@ from core.numerics.intervals import (
     quotient,
 )
 from core.reactors.tank.tank_balance import TankBalance
+from core.reactors.work import price_on_intervals
 
 _EPS = float(np.finfo(float).eps)
 _FAR = 690.0  # logit beyond which the rest of the way is no normal number
@@ -160,6 +161,14 @@ class _OneReaction:
         self._boxed: IntArray = np.flatnonzero(self.nu)
 
     @cached_property
+    def _operations(self) -> int:
+        balance = self.balance
+        lines = [balance.rates]
+        if self.heated:
+            lines += [balance.heats, balance.capacities]
+        return sum(line.operations for line in lines)
+
+    @cached_property
     def edges(self) -> FloatArray:
         """Edges of the first boxes, shape (N, b + 1), none where nothing can react."""
         low, high = self._range
@@ -239,6 +248,8 @@ class _OneReaction:
         at_upper: FloatArray,
         case: IntArray,
     ) -> Sequence[Enclosure]:
+        if self.balance.work is not None:
+            self.balance.work.spend(price_on_intervals(self._operations, len(case)))
         wide = 8 * _EPS
         gone = expit(lower) * (1 - wide), np.minimum(expit(upper) * (1 + wide), 1.0)
         left = expit(-upper) * (1 - wide), np.minimum(expit(-lower) * (1 + wide), 1.0)

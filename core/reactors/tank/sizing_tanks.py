@@ -10,7 +10,6 @@ import numpy as np
 from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused
 from core.reactors.balances import Balances, Basis, rate_factor
-from core.reactors.march.marching import Work
 from core.reactors.observed import Fed, Observer
 from core.reactors.one_reaction import along_path, stirred_tank
 from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
@@ -29,6 +28,7 @@ from core.reactors.scanning import first_size
 from core.reactors.tank.steady_states import sizes_for
 from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
+from core.reactors.work import Work
 
 _Sized = Callable[[float], tuple[float, Course]]
 
@@ -138,7 +138,7 @@ def _along_branch(
             y[layout.temperature] = temperature
         return np.broadcast_to(np.asarray(gap(size, y)[0], dtype=float), len(flows))
 
-    found = sizes_for(inside, problem.feed, Size(basis, scale), quantity, 0.0)
+    found = sizes_for(inside, problem.feed, Size(basis, scale), quantity, 0.0, work)
     if not found:
         raise _out_of_reach(
             lambda size: (0.0, through_tanks(problem, basis, before, work, size)), scale

@@ -39,6 +39,7 @@ from core.reactors.tank.network_states import (
 )
 from core.reactors.tank.rest_states import RestStates, rest_states
 from core.reactors.tank.tank_balance import TankBalance, TankHeat
+from core.reactors.work import Work
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
 
@@ -48,14 +49,15 @@ _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
 _RESTARTS = 2  # of a network that its branch does not lead to
-_IN_VAIN = 4
-_A_STATE, _AN_ENCLOSURE = 8, 10
-"""Evaluations of a march that one state of a network, or one box, counts as."""
+_IN_VAIN = 30
+"""Evaluations of a march that one of a network counts as, besides, where nothing is found."""
 _MORE_STARTS, _FEW_STARTS = 12, 4
 """From which states are looked for beside the branch, and beside those of a neighbour."""
 
 
-def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalance:
+def tank_balance(
+    problem: ReactorProblem, feed: Stream, size: Size, work: Work | None = None
+) -> TankBalance:
     """Return the balances of one tank, of one case.
 
     Parameters
@@ -65,6 +67,7 @@ def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalan
     feed : Stream
         What enters, mol/s.
     size : Size
+    work : Work, optional
 
     Raises
     ------
@@ -91,6 +94,7 @@ def tank_balance(problem: ReactorProblem, feed: Stream, size: Size) -> TankBalan
         space_time=np.atleast_1d(size.value / v),
         heat=None if isinstance(thermal, Isothermal) else _tank_heat(problem, within),
         reversible=any(law.reverse is not None for law in problem.laws),
+        work=work,
     )
 
 
@@ -129,7 +133,7 @@ def steady_states(
     *,
     curves: bool = False,
     near: Sequence[SteadyState] = (),
-    spend: Callable[[int], None] = lambda _evaluations: None,
+    work: Work | None = None,
 ) -> tuple[SteadyStates, tuple[Note, ...]]:
     """Return the steady states of one tank, and what there is to say of them.
 
@@ -145,8 +149,8 @@ def steady_states(
     near : sequence of SteadyState
         Of a tank that differs little. Those of a network are looked for from there, and
         along their branch only where some have gone.
-    spend : callable, optional
-        Is told how many evaluations of a march the work amounts to, also where none is found.
+    work : Work, optional
+        What it may take.
 
     Returns
     -------
@@ -159,22 +163,23 @@ def steady_states(
     ------
     Refused
         As :func:`tank_balance`; ``outside-correlation`` where the only states lie beyond
-        the temperatures that the heat capacities reach; ``steady-state-not-found``.
+        the temperatures that the heat capacities reach; ``steady-state-not-found``;
+        ``compute-budget``.
     """
     feed = problem.feed if feed is None else feed
-    balance = tank_balance(problem, feed, size)
+    balance = tank_balance(problem, feed, size, work)
     _check_unreacted(balance)
     if len(balance.nu) > 1:
         network = Network(balance)
         states = _searched(problem, feed, network, near)
-        # A search in vain is dear: few are enough to know.
-        spend((_A_STATE if states else _IN_VAIN * _A_STATE) * network.evaluations)
         if not states:
+            # A search in vain is dear: few are enough to know.
+            if work is not None:
+                work.take(_IN_VAIN * network.evaluations)
             raise _not_found()
         return SteadyStates(states, complete=False, described=_described(states)), ()
     real = problem.gas is not None and feed.phase == "gas"
     found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
-    spend(_AN_ENCLOSURE * int(found.boxes[0]))
     if not len(found.case):
         raise _not_found() if balance.heat is None else _beyond(balance)
     states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))
@@ -242,6 +247,7 @@ def sizes_for(
     near: Size,
     quantity: Callable[[FloatArray, FloatArray | None, FloatArray], FloatArray],
     target: float,
+    work: Work | None = None,
 ) -> tuple[tuple[Size, SteadyState], ...]:
     """Return all sizes of a tank at which a quantity meets a target, on one branch of states.
 
@@ -257,13 +263,14 @@ def sizes_for(
     quantity : callable
         Of flows, shape (m, S), temperatures, shape (m,), or None, and sizes, shape (m,).
     target : float
+    work : Work, optional
 
     Returns
     -------
     tuple of (Size, SteadyState)
         In the order of the branch.
     """
-    balance = tank_balance(problem, feed, near)
+    balance = tank_balance(problem, feed, near, work)
     _check_unreacted(balance)
     network = Network(balance)
     case: IntArray = np.zeros(1, dtype=np.intp)

@@ -36,6 +36,7 @@ import numpy as np
 
 from core.arrays import FloatArray, IntArray
 from core.numerics.straight_line import Number, StraightLine, record
+from core.reactors.work import Work, price_on_arrays
 
 _EPS = float(np.finfo(float).eps)
 _MOST_STEPS = 200
@@ -119,6 +120,8 @@ class TankBalance:
         None: isothermal.
     reversible : bool
         Whether reactions may run backwards.
+    work : Work or None
+        What steady states may take of computing; None: without limit.
     """
 
     nu: FloatArray
@@ -128,6 +131,7 @@ class TankBalance:
     space_time: FloatArray
     heat: TankHeat | None = None
     reversible: bool = True
+    work: Work | None = None
 
     @property
     def size(self) -> int:
@@ -186,6 +190,8 @@ class TankBalance:
         self, t: FloatArray, case: IntArray
     ) -> tuple[Number, list[Number], Number, list[Number]]:
         """Return ``heats`` and ``capacities`` at temperatures, shape (m,), at once."""
+        if self.work is not None:
+            self.work.spend(price_on_arrays(self._both.operations))
         gained, *rest = self.on(self._both, case)(t, np.zeros((0, len(t))))
         r = len(self.nu)
         return gained, rest[:r], rest[r], rest[r + 1 :]

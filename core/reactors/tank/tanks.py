@@ -7,14 +7,14 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.errors import Note, refuse
+from core.errors import Note
 from core.reactors.balances import Balances, Basis
-from core.reactors.march.marching import Work
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import Exchange, ReactorProblem, Size, StirredTank, TanksInSeries
 from core.reactors.reacted import StageReached, SteadyState, SteadyStates
 from core.reactors.tank.steady_states import steady_states
 from core.reactors.telling import Course, sizes_of
+from core.reactors.work import Work
 from core.streams.stream import Stream
 
 METHOD_ONE = (
@@ -78,7 +78,6 @@ def through_tanks(
     for k in range(number):
         inside = replace(problem, feed=feed, reactor=StirredTank())
         wanted = near if k == number - 1 else None
-        check_budget(work)
         tank = _at_rest(
             inside, basis, at, size / number, wanted, seen.get(k, ()), work, curves=number == 1
         )
@@ -125,23 +124,6 @@ def through_tanks(
     )
 
 
-def check_budget(work: Work) -> None:
-    """Refuse to go on where no evaluations are left.
-
-    Raises
-    ------
-    Refused
-        ``compute-budget``.
-    """
-    if work.left <= 0:
-        raise refuse(
-            "compute-budget",
-            ("reactor",),
-            "the steady states of so many tanks were looked for that the work allowed for one"
-            " request is spent; narrow the range, or ask for fewer tanks or reactions",
-        )
-
-
 def _at_rest(
     problem: ReactorProblem,
     basis: Basis,
@@ -153,9 +135,7 @@ def _at_rest(
     *,
     curves: bool,
 ) -> _Tank:
-    found, notes = steady_states(
-        problem, Size(basis, size), curves=curves, near=near, spend=work.take
-    )
+    found, notes = steady_states(problem, Size(basis, size), curves=curves, near=near, work=work)
     states = tuple(_of_all_fed(problem, before, state) for state in found.states)
     described = found.described
     if wanted is not None:
