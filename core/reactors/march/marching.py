@@ -102,11 +102,11 @@ class Marcher:
     def _counted(
         self, run: Callable[[float, Sequence[float]], list[float]]
     ) -> Callable[[float, Sequence[float]], list[float]]:
-        """Return slopes of a state that has the time spent as its last number."""
+        """Return slopes whose calls are counted."""
 
         def slopes(at: float, state: Sequence[float]) -> list[float]:
             self._calls += 1
-            return run(at, state[:-1])
+            return run(at, state)
 
         return slopes
 

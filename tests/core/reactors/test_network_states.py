@@ -26,6 +26,7 @@ from core.reactors.tank.network_states import (
 )
 from core.reactors.tank.steady_states import sizes_for, steady_states
 from core.reactors.tank.tank_balance import TankBalance
+from core.reactors.work import Work
 from tests.core.reactors.builders import liquid, vector
 from tests.core.reactors.network_cases import draw, residual
 from tests.core.reactors.random_networks import run
@@ -270,10 +271,10 @@ def test_autocatalysis_among_others_starts_where_it_is_fed():
 
 def test_no_state_is_made_up_where_there_is_none():
     # B is used up at a rate that does not fall with it: none can be at rest.
-    spent = []
+    work = Work()
     with pytest.raises(Refused) as refused:
-        steady_states(series(1e-5, 10.0, second_order=0.0), volume(0.4), spend=spent.append)
-    assert 0 < sum(spent) < 150_000
+        steady_states(series(1e-5, 10.0, second_order=0.0), volume(0.4), work=work)
+    assert 0 < work.spent < 150_000
     assert refused.value.faults[0].code == "steady-state-not-found"
     found, _ = steady_states(series(1e-3, 0.1, second_order=0.0), volume(0.4))
     assert found.states[0].outlet.flows[1] == pytest.approx(2.0 * 0.4 / 1.4 - 0.1 * 0.4, rel=1e-9)
@@ -282,11 +283,11 @@ def test_no_state_is_made_up_where_there_is_none():
 def test_states_are_found_from_those_of_a_neighbour_with_less_work():
     hot = {"e1": 110e3, "e2": 120e3, "k1": 1e-5, "k2": 1e-8}
     problem = series(**hot, thermal=Adiabatic(), heats={0: -200e3, 1: -150e3})
-    spent: list[int] = []
-    first, _ = steady_states(problem, volume(0.4), spend=spent.append)
-    again, _ = steady_states(problem, volume(0.41), near=first.states, spend=spent.append)
+    one_, other_ = Work(), Work()
+    first, _ = steady_states(problem, volume(0.4), work=one_)
+    again, _ = steady_states(problem, volume(0.41), near=first.states, work=other_)
     alone, _ = steady_states(problem, volume(0.41))
-    assert spent[1] < 0.5 * spent[0]
+    assert other_.spent < 0.5 * one_.spent
     assert len(again.states) == len(alone.states) == 3
     for one, other in zip(again.states, alone.states, strict=True):
         assert one.outlet.flows == pytest.approx(other.outlet.flows, rel=1e-7, abs=1e-10)
