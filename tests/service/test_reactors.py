@@ -442,3 +442,24 @@ def test_a_bed_of_liquid_loses_pressure(client):
             unknown = changed(unknown, reactor__volume=..., target={"conversion": 0.1})
         refused = post(client, question, unknown)
         assert_refused(refused, 422, "condition-missing", "/feed/pressure")
+
+
+def test_a_profile_up_to_equilibrium_may_be_read_between_its_places(client):
+    # Places even in conversion alone would leave out most of the time.
+    request = changed(
+        asked("two-temperatures-and-the-best-one"),
+        target=..., free=..., between=..., profile_points=...,
+        feed__flows=...,
+        feed__volumetric_flow=...,
+        feed__amounts={"acid": "11 kmol", "alcohol": "16 kmol"},
+        feed__volume="2.15 m3",
+        reactor={"kind": "batch", "time": "40 h"},
+    )  # fmt: skip
+    told = result(client, "rating", request)
+    columns, hours = told["profile"]["columns"], told["profile"]["units"]["time"]
+    assert hours == "h"
+    assert len(columns["time"]) == 21
+    for time in (1.3, 5.0, 9.0, 15.0, 30.0):
+        once = result(client, "rating", changed(request, reactor__time=f"{time} h"))
+        read = np.interp(time, columns["time"], columns["conversion"])
+        assert_allclose(read, value(once["conversion"]), atol=0.01)
