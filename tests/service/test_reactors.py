@@ -463,3 +463,11 @@ def test_a_profile_up_to_equilibrium_may_be_read_between_its_places(client):
         once = result(client, "rating", changed(request, reactor__time=f"{time} h"))
         read = np.interp(time, columns["time"], columns["conversion"])
         assert_allclose(read, value(once["conversion"]), atol=0.01)
+
+
+def test_where_all_reacts_no_largest_conversion_is_told(answers):
+    # From some temperature on the water makes no difference, and rounding would choose one.
+    told = answers["temperature-of-the-cooling-water"]
+    assert max(told["curve"]["columns"]["conversion"]) == pytest.approx(1, abs=1e-9)
+    assert "optimum" not in told
+    assert "optimum" in answers["two-temperatures-and-the-best-one"]

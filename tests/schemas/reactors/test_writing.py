@@ -223,7 +223,6 @@ TITLES = {
     "train": ["Temperature against conversion, stage by stage"],
     "fed-batch": [
         "Conversion of A along the way",
-        "Reciprocal rate of A against conversion",
         "Composition along the way",
     ],
 }
