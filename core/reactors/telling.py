@@ -9,7 +9,7 @@ import numpy as np
 
 from core.arrays import FloatArray, IntArray
 from core.equilibrium.feed_at_equilibrium import constant_subject
-from core.errors import Amount, Note, Refused, Subject, refuse
+from core.errors import Amount, Fault, Note, Refused, Subject, refuse
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNKNOWN
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
@@ -261,7 +261,26 @@ def check_temperatures(problem: ReactorProblem, temperature: FloatArray | None) 
         return
     faults = beyond_range(known.of_all[0], temperature, ("reactor",))
     if faults:
-        raise Refused(faults)
+        entered = problem.feed.temperature
+        hotter = entered is not None and float(temperature.max()) > float(entered) + 1.0
+        raise Refused([_runs_away(fault) if hotter else fault for fault in faults])
+
+
+def _runs_away(fault: Fault) -> Fault:
+    """Return a fault about a temperature that the reactor comes to, with what it means."""
+    t = fault.facts.get("temperature")
+    if fault.code != "outside-correlation" or not isinstance(t, Amount):
+        return fault
+    detail = (
+        "inside the reactor it comes to {temperature}. If it is not meant to, check the rates and"
+        " their units, cool it more, or dilute the feed; runaway is not assessed here: follow local"
+        " codes and licensed practice. " + _capital(fault.detail)
+    )
+    return Fault(fault.code, fault.subject, detail, fault.facts)
+
+
+def _capital(words: str) -> str:
+    return words[:1].upper() + words[1:]
 
 
 def check_gas(problem: ReactorProblem, seen: Seen) -> None:

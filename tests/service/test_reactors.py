@@ -471,3 +471,35 @@ def test_where_all_reacts_no_largest_conversion_is_told(answers):
     assert max(told["curve"]["columns"]["conversion"]) == pytest.approx(1, abs=1e-9)
     assert "optimum" not in told
     assert "optimum" in answers["two-temperatures-and-the-best-one"]
+
+
+def test_rates_by_volume_and_by_catalyst_mass_stand_in_columns_of_their_own(client):
+    # A bed of a stated mass tells its rate by mass, one of a stated volume by volume.
+    train = asked("three-beds-with-absorption-between")
+    last = len(train["reactor"]["stages"]) - 1
+    where = f"reactor__stages__{last}__"
+    mixed = changed(train, **{f"{where}catalyst_mass": ..., f"{where}volume": "49 m3"})
+    told = result(client, "rating", mixed)
+    response = post(client, "rating", mixed, headers={"Accept": "text/csv"})
+    head, *rows = list(csv.reader(io.StringIO(response.get_data(as_text=True))))
+    by_mass, by_volume = (
+        head.index(name) for name in ("rate [mol/(kg h)]", "rate (other basis) [kmol/(m3 h)]")
+    )
+    for row in rows:
+        profile = next(s for s in told["stages"] if s["id"] == row[0])["profile"]
+        at = by_volume if row[0] == "bed-3" else by_mass
+        assert float(row[at]) in profile["columns"]["rate"]
+        assert row[by_mass + by_volume - at] == ""
+
+
+def test_a_reactor_that_runs_out_of_all_data_is_told_as_what_it_is(client):
+    hot = changed(
+        asked("partial-oxidation-in-cooled-tubes"), thermal={"mode": "adiabatic"},
+        reactions__1__rate__constant__constant="22 mmol/(kg s bar^1.3)",
+        feed__flows__O2="4000 kmol/h",
+    )  # fmt: skip
+    response = post(client, "rating", hot)
+    assert_refused(response, 422, "outside-correlation", "/reactor")
+    detail = response.get_json()["errors"][0]["detail"]
+    assert detail.startswith("inside the reactor it comes to ")
+    assert "runaway is not assessed here" in detail
