@@ -493,10 +493,14 @@ def test_rates_by_volume_and_by_catalyst_mass_stand_in_columns_of_their_own(clie
 
 
 def test_a_reactor_that_runs_out_of_all_data_is_told_as_what_it_is(client):
+    cooled = {
+        "mode": "exchange",
+        "coefficient_area_per_volume": "0.1 kW/(m3 K)",
+        "utility_temperature": "20 degC",
+    }
     hot = changed(
-        asked("partial-oxidation-in-cooled-tubes"), thermal={"mode": "adiabatic"},
-        reactions__1__rate__constant__constant="22 mmol/(kg s bar^1.3)",
-        feed__flows__O2="4000 kmol/h",
+        asked("cooled-tubes-in-counter-current"), thermal=cooled,
+        reactions__0__enthalpy__heat="-140 kJ/mol",
     )  # fmt: skip
     response = post(client, "rating", hot)
     assert_refused(response, 422, "outside-correlation", "/reactor")
