@@ -18,10 +18,10 @@ import numpy as np
 from scipy.optimize import minimize_scalar
 
 from core.errors import Amount, Fact, Fault, Refused
-from core.reactors.along_path import has_path
-from core.reactors.marching import Work
+from core.reactors.march.marching import Work
 from core.reactors.mixing import at_own_compressibility
 from core.reactors.observed import Fed
+from core.reactors.one_reaction.along_path import has_path
 from core.reactors.problem import (
     Batch,
     ConversionTarget,
@@ -39,8 +39,8 @@ from core.reactors.rating import rating
 from core.reactors.reacted import OperatingPoints, Optimum, Reacted, Solution
 from core.reactors.scanning import bracketed
 from core.reactors.solving import basis_of, fed_of, run
-from core.reactors.steady_states import steady_states
-from core.reactors.tanks import through_tanks
+from core.reactors.tank.steady_states import steady_states
+from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import outlet_of, tell
 from core.reactors.trains import end_of_train, gap_at
 from core.streams.stream import Stream

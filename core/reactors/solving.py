@@ -7,12 +7,13 @@ from dataclasses import replace
 import numpy as np
 
 from core.errors import Amount, Fact, Fault, Refused, refuse
-from core.reactors import along_path, recycle
 from core.reactors.balances import Balances, Basis
-from core.reactors.fed_batch import accumulation_of
 from core.reactors.friction import Friction, bed_length, friction_of
-from core.reactors.marching import Marcher, Work
+from core.reactors.march import recycle
+from core.reactors.march.fed_batch import accumulation_of
+from core.reactors.march.marching import Marcher, Work
 from core.reactors.observed import Fed, Observer
+from core.reactors.one_reaction import along_path
 from core.reactors.problem import (
     Batch,
     ConversionTarget,
@@ -24,8 +25,8 @@ from core.reactors.problem import (
     Target,
     Train,
 )
-from core.reactors.sizing_tanks import tanks_for
-from core.reactors.tanks import through_tanks
+from core.reactors.tank.sizing_tanks import tanks_for
+from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
 
 _OF_THE_LIMIT = ("integral-not-converged", "rate-not-finite", "outside-correlation")

@@ -11,7 +11,7 @@ from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused, refuse
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
-from core.reactors.marching import Work
+from core.reactors.march.marching import Work
 from core.reactors.mixing import at_temperature, heated, mixed, sensible_duty
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (
@@ -31,8 +31,8 @@ from core.reactors.problem import (
 )
 from core.reactors.reacted import Reacted, StageReached
 from core.reactors.scanning import first_size
-from core.reactors.sizing_tanks import tank_scale
 from core.reactors.solving import basis_of, fed_of, run, size_for
+from core.reactors.tank.sizing_tanks import tank_scale
 from core.reactors.telling import assumptions, outlet_of, remarks, tell
 from core.reactors.yields import yields_of
 from core.streams.stream import Stream

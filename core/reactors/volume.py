@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from core.reactors.marching import Work
+from core.reactors.march.marching import Work
 from core.reactors.problem import ReactorProblem, Target, Train
 from core.reactors.reacted import Reacted
 from core.reactors.solving import fed_of, size_for

@@ -19,9 +19,9 @@ from scipy.integrate import solve_ivp
 
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
-from core.reactors.conversion import conversion_at
-from core.reactors.plug_flow import conversion_in
-from core.reactors.sizing import SizingProblem, path_of, size_reactor
+from core.reactors.one_reaction.conversion import conversion_at
+from core.reactors.one_reaction.plug_flow import conversion_in
+from core.reactors.one_reaction.sizing import SizingProblem, path_of, size_reactor
 from tests.benchmark.plug_flow_cases import PRESSURE, TEMPERATURE, Group, draw
 
 SERIES, SAMPLED, REPETITIONS = 10_000, 60, 7

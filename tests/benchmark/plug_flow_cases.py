@@ -19,8 +19,8 @@ from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw
 from core.reactions.reaction_set import Reaction, ReactionSet
-from core.reactors.plug_flow import PlugFlow
-from core.reactors.sizing import SizingProblem
+from core.reactors.one_reaction.plug_flow import PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem
 from core.streams.stream import Stream
 from core.substances.substance import Substance
 

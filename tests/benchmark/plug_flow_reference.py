@@ -9,7 +9,7 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
-from core.reactors.sizing import size_reactor
+from core.reactors.one_reaction.sizing import size_reactor
 from tests.benchmark.plug_flow_cases import PRESSURE, TEMPERATURE, Group, draw
 
 DIGITS = 30

@@ -15,8 +15,8 @@ import numpy as np
 from scipy.optimize import brentq, root
 from scipy.special import logit
 
-from core.reactors.network_states import Network, solve_network
-from core.reactors.rest_states import rest_states
+from core.reactors.tank.network_states import Network, solve_network
+from core.reactors.tank.rest_states import rest_states
 from tests.core.reactors import network_cases, rest_cases
 
 SERIES, SAMPLED, REPETITIONS = 4_000, 60, 7

@@ -14,9 +14,9 @@ from scipy.integrate import quad
 from core.rates.constants import Arrhenius, ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity
-from core.reactors.plug_flow import PlugFlow, conversion_in
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.stirred_tank import StirredTank
+from core.reactors.one_reaction.plug_flow import PlugFlow, conversion_in
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.stirred_tank import StirredTank
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from tests.core.reactors.builders import gas, heats, liquid, rate_law, reaction_set
 

@@ -6,7 +6,7 @@ from numpy.testing import assert_allclose
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity
-from core.reactors.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ATM = 101325.0

@@ -6,8 +6,8 @@ from numpy.testing import assert_allclose
 
 from core.rates.constants import Constant
 from core.rates.rate_law import RateLaw, ReverseConstant
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.stirred_tank import StirredTank, TanksInSeries
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.stirred_tank import StirredTank, TanksInSeries
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ATM = 101325.0

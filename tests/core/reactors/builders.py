@@ -13,7 +13,7 @@ from core.rates.constants import Constant
 from core.rates.power_product import Driving
 from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import Reaction, ReactionSet
-from core.reactors.sizing import ReactorKind, Sizing, SizingProblem, size_reactor
+from core.reactors.one_reaction.sizing import ReactorKind, Sizing, SizingProblem, size_reactor
 from core.streams.stream import Stream, StreamPhase
 from core.substances.heat_capacity import HeatCapacity
 from core.substances.substance import StatedProperties, Substance

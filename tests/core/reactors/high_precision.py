@@ -13,7 +13,7 @@ from core.constants import GAS_CONSTANT
 from core.rates.constants import Arrhenius, Constant, ConstantAt
 from core.rates.equilibrium_constant import VantHoff
 from core.rates.rate_law import ByAffinity
-from core.reactors.sizing import SizingProblem
+from core.reactors.one_reaction.sizing import SizingProblem
 
 DIGITS = 40
 R = mp.mpf("8.31446261815324")

@@ -16,7 +16,7 @@ import numpy as np
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.numerics.straight_line import Number, record
-from core.reactors.tank_balance import TankBalance, TankHeat
+from core.reactors.tank.tank_balance import TankBalance, TankHeat
 
 SUBSTANCES, REACTIONS = 6, 4
 VOLUMETRIC, SOLVENT = 1e-3, 3.0e6

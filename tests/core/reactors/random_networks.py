@@ -15,7 +15,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from core.arrays import FloatArray
-from core.reactors.network_states import ACCEPTED, solve_network
+from core.reactors.tank.network_states import ACCEPTED, solve_network
 from tests.core.reactors.network_cases import draw, residual
 
 NETWORKS, EACH = 100, 100

@@ -14,7 +14,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from core.reactors.rest_states import RestStates, rest_states
+from core.reactors.tank.rest_states import RestStates, rest_states
 from tests.core.reactors.rest_cases import KINDS, Cases, draw, scanned
 
 CASES, POINTS = 10_000, 46_001

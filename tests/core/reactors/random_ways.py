@@ -22,9 +22,9 @@ from core.constants import GAS_CONSTANT
 from core.rates.constants import ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity, DenominatorFactor, DenominatorTerm, RateLaw
-from core.reactors.advance import advance
-from core.reactors.plug_flow import PlugFlow, conversion_in
-from core.reactors.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.advance import advance
+from core.reactors.one_reaction.plug_flow import PlugFlow, conversion_in
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
 from core.streams.stream import Stream
 from tests.core.reactors.builders import heats, reaction_set
 

@@ -17,7 +17,7 @@ from scipy.special import expit
 from core.arrays import FloatArray
 from core.constants import GAS_CONSTANT
 from core.numerics.straight_line import Number, power_of_amount, record
-from core.reactors.tank_balance import TankBalance, TankHeat
+from core.reactors.tank.tank_balance import TankBalance, TankHeat
 
 KINDS = ("half", "first", "three-halves", "second", "third", "reversible", "autocatalytic",
          "hyperbolic", "inhibited", "expanding")  # fmt: skip

@@ -15,9 +15,9 @@ from core.rates.constants import Arrhenius, Constant, ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity, DenominatorFactor, DenominatorTerm, RateLaw
 from core.reactions.build import ReactionInput, build_reaction_set
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.stirred_tank import StirredTank
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.stirred_tank import StirredTank
 from core.streams.stream import Stream
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from core.thermochemistry.heat_balance import adiabatic_temperature

@@ -13,10 +13,10 @@ from core.errors import Refused
 from core.rates.constants import Constant, ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity, DenominatorFactor, DenominatorTerm, ReverseConstant
-from core.reactors.advance import advance
-from core.reactors.conversion import _Panels
-from core.reactors.plug_flow import Batch, PlugFlow, conversion_in
-from core.reactors.sizing import SizingProblem, rate_reactor, size_reactor
+from core.reactors.one_reaction.advance import advance
+from core.reactors.one_reaction.conversion import _Panels
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow, conversion_in
+from core.reactors.one_reaction.sizing import SizingProblem, rate_reactor, size_reactor
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from tests.core.reactors.builders import gas, heats, liquid, rate_law, reaction_set, vector
 from tests.core.reactors.random_ways import draw, errors

@@ -11,9 +11,9 @@ from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.pellet import Pellet, effectiveness_factor
 from core.rates.rate_law import ByAffinity, DenominatorFactor, DenominatorTerm
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import SizingProblem
-from core.reactors.stirred_tank import StirredTank
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem
+from core.reactors.one_reaction.stirred_tank import StirredTank
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size, vector
 from tests.core.reactors.high_precision import size_of
 

@@ -16,10 +16,10 @@ from core.errors import Refused
 from core.rates.constants import ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity
-from core.reactors import along_path
 from core.reactors.balances import Balances
-from core.reactors.marching import Marcher
+from core.reactors.march.marching import Marcher
 from core.reactors.observed import Fed, Observer
+from core.reactors.one_reaction import along_path
 from core.reactors.problem import (
     Adiabatic,
     ApproachTarget,

@@ -15,7 +15,8 @@ from core.errors import Refused
 from core.numerics.straight_line import record
 from core.rates.constants import ConstantAt
 from core.rates.rate_law import RateLaw
-from core.reactors.network_states import (
+from core.reactors.problem import Adiabatic, Exchange
+from core.reactors.tank.network_states import (
     Network,
     at_volume,
     crossings,
@@ -23,9 +24,8 @@ from core.reactors.network_states import (
     newton,
     solve_network,
 )
-from core.reactors.problem import Adiabatic, Exchange
-from core.reactors.steady_states import sizes_for, steady_states
-from core.reactors.tank_balance import TankBalance
+from core.reactors.tank.steady_states import sizes_for, steady_states
+from core.reactors.tank.tank_balance import TankBalance
 from tests.core.reactors.builders import liquid, vector
 from tests.core.reactors.network_cases import draw, residual
 from tests.core.reactors.random_networks import run

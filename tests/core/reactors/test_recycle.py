@@ -14,7 +14,7 @@ from scipy.optimize import minimize_scalar
 
 from core.errors import Refused
 from core.rates.constants import ConstantAt
-from core.reactors import recycle
+from core.reactors.march import recycle
 from core.reactors.problem import (
     Adiabatic,
     ConversionTarget,

@@ -13,8 +13,8 @@ from scipy.integrate import solve_ivp
 
 from core.constants import GAS_CONSTANT
 from core.numerics.straight_line import power_of_amount, record
-from core.reactors.rest_states import rest_states
-from core.reactors.tank_balance import TankBalance, TankHeat
+from core.reactors.tank.rest_states import rest_states
+from core.reactors.tank.tank_balance import TankBalance, TankHeat
 from tests.core.reactors.random_rest_states import run
 from tests.core.reactors.rest_cases import KINDS, draw
 

@@ -8,7 +8,7 @@ from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.pellet import Pellet
 from core.rates.rate_law import ByAffinity, DenominatorFactor, DenominatorTerm, ReverseConstant
-from core.reactors.path import Place, reaction_path
+from core.reactors.one_reaction.path import Place, reaction_path
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, vector
 
 GAS = reaction_set({"CO": -1, "H2": -2, "M": 1, "N2": 0})

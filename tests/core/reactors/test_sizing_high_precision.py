@@ -8,8 +8,8 @@ from scipy.integrate import solve_ivp
 from core.rates.constants import Arrhenius, Constant, ConstantAt
 from core.rates.equilibrium_constant import EquilibriumConstant, VantHoff
 from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, vector
 from tests.core.reactors.high_precision import size_of
 

@@ -8,9 +8,9 @@ from numpy.testing import assert_allclose
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.stirred_tank import StirredTank, TanksInSeries
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.stirred_tank import StirredTank, TanksInSeries
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size, vector
 
 # CO + 3 H2 <=> CH4 + H2O beside an inert; atoms of C, H, O, N by substance.

@@ -9,9 +9,9 @@ from core.rates.constants import Arrhenius, Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity, RateLaw, ReverseConstant
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.plug_flow import Batch, PlugFlow
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.stirred_tank import StirredTank, TanksInSeries
+from core.reactors.one_reaction.plug_flow import Batch, PlugFlow
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
+from core.reactors.one_reaction.stirred_tank import StirredTank, TanksInSeries
 from core.streams.stream import Stream
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 

@@ -8,8 +8,8 @@ from scipy.optimize import brentq
 from core.rates.constants import Constant
 from core.rates.equilibrium_constant import EquilibriumConstant
 from core.rates.rate_law import ByAffinity
-from core.reactors.plug_flow import PlugFlow
-from core.reactors.stirred_tank import StirredTank, TanksInSeries
+from core.reactors.one_reaction.plug_flow import PlugFlow
+from core.reactors.one_reaction.stirred_tank import StirredTank, TanksInSeries
 from tests.core.reactors.builders import gas, liquid, rate_law, reaction_set, size
 
 ISOMERS = reaction_set({"A": -1, "R": 1})

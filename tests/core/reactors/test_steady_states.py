@@ -20,7 +20,7 @@ from core.reactors.problem import (
     ReactorProblem,
     StirredTank,
 )
-from core.reactors.steady_states import steady_states, tank_balance
+from core.reactors.tank.steady_states import steady_states, tank_balance
 from core.real_gas.equation import gas_of
 from core.substances.heat_capacity import HeatCapacity, Piece, Polynomial
 from core.thermochemistry.heat_balance import adiabatic_temperature

@@ -1,7 +1,7 @@
 """From the inlet to the outlet: plug flow, packed beds and batches, step by step.
 
 What one reaction without heat exchange and pressure drop does is found more exactly
-along its path (:mod:`core.reactors.path`); everything else is marched. A size that is
+along its path (:mod:`core.reactors.one_reaction.path`); everything else is marched. A size that is
 asked for is where the target is met first; a utility that flows against the stream
 enters where it has its own temperature, which shooting finds (H. B. Keller, Numerical
 Methods for Two-Point Boundary-Value Problems, 1968).

@@ -15,10 +15,10 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.errors import refuse
-from core.reactors.advance import Advance, advance
-from core.reactors.conversion import conversion_at
-from core.reactors.path import ReactionPath
-from core.reactors.sizing import (
+from core.reactors.one_reaction.advance import Advance, advance
+from core.reactors.one_reaction.conversion import conversion_at
+from core.reactors.one_reaction.path import ReactionPath
+from core.reactors.one_reaction.sizing import (
     Profile,
     Sizing,
     SizingProblem,

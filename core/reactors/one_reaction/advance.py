@@ -18,7 +18,7 @@ from core.numerics.quadrature import IndexArray, integrate
 from core.numerics.roots import find_root
 from core.rates.power_product import FlooredFactor
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.path import Place, ReactionPath, out_of_reach, target_subject
+from core.reactors.one_reaction.path import Place, ReactionPath, out_of_reach, target_subject
 
 _RTOL = 1e-12
 _ENDS: FloatArray = np.array([0.0, 1.0])

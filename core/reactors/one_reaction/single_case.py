@@ -1,4 +1,4 @@
-"""The rate along the way of one isothermal case: what :mod:`core.reactors.path` has for many.
+"""The rate along the way of one isothermal case: what :mod:`core.reactors.one_reaction.path` has for many.
 
 With one case every coefficient is a float and every question of which column
 does what is settled once, so that a rate takes a third of the time that arrays

@@ -9,7 +9,7 @@ computed as well as any other. Rates near equilibrium follow from how far each
 amount is from its equilibrium value, by log1p of a multiple of w.
 
 The temperature is that of the feed, or follows the conversion where no heat is
-exchanged (:mod:`core.reactors.adiabat`): then a gas whose pressure stays has a
+exchanged (:mod:`core.reactors.one_reaction.adiabat`): then a gas whose pressure stays has a
 volume that goes with it, and the distance to the temperature at equilibrium is
 known as well as those of the amounts.
 
@@ -34,10 +34,10 @@ from core.rates.pellet import Per
 from core.rates.power_product import FlooredFactor, PowerProduct, Rows, Warmth, spread
 from core.rates.rate_law import Hindrance, Pores, RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.adiabat import Adiabat, adiabat
-from core.reactors.amounts import Account, Trend, rows_of
-from core.reactors.limit import Imbalance, direction, equilibrium, reach, to_end
-from core.reactors.single_case import SingleCase
+from core.reactors.one_reaction.adiabat import Adiabat, adiabat
+from core.reactors.one_reaction.amounts import Account, Trend, rows_of
+from core.reactors.one_reaction.limit import Imbalance, direction, equilibrium, reach, to_end
+from core.reactors.one_reaction.single_case import SingleCase
 from core.records import record
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats

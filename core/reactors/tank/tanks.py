@@ -8,11 +8,11 @@ import numpy as np
 
 from core.errors import Note
 from core.reactors.balances import Balances, Basis
-from core.reactors.marching import Work
+from core.reactors.march.marching import Work
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import Exchange, ReactorProblem, Size, StirredTank, TanksInSeries
 from core.reactors.reacted import StageReached, SteadyState, SteadyStates
-from core.reactors.steady_states import steady_states
+from core.reactors.tank.steady_states import steady_states
 from core.reactors.telling import Course, sizes_of
 from core.streams.stream import Stream
 

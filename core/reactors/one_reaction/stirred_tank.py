@@ -18,9 +18,9 @@ from core.errors import Note, refuse
 from core.numerics.quadrature import IndexArray
 from core.numerics.roots import find_root
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.advance import check_alive, does_not_start
-from core.reactors.path import Place, ReactionPath, out_of_reach
-from core.reactors.sizing import (
+from core.reactors.one_reaction.advance import check_alive, does_not_start
+from core.reactors.one_reaction.path import Place, ReactionPath, out_of_reach
+from core.reactors.one_reaction.sizing import (
     Sizing,
     SizingProblem,
     Tanks,

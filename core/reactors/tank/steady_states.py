@@ -1,7 +1,7 @@
 """The steady states of a stirred tank as it is described: feed, reactions, heat, size.
 
-With one reaction all of them are found, with proof (:mod:`core.reactors.rest_states`);
-with several, those that a search finds (:mod:`core.reactors.network_states`), and
+With one reaction all of them are found, with proof (:mod:`core.reactors.tank.rest_states`);
+with several, those that a search finds (:mod:`core.reactors.tank.network_states`), and
 ``complete`` is false. Stability is that of the balances of moles and energy of what is
 in the tank alone; walls and catalyst store no heat.
 """
@@ -18,15 +18,6 @@ from core.errors import Amount, Note, refuse
 from core.numerics.all_roots import MOST_BOXES
 from core.numerics.straight_line import Number
 from core.reactors.balances import Balances, Basis
-from core.reactors.network_states import (
-    Network,
-    at_volume,
-    crossings,
-    distinct,
-    follow,
-    more_states,
-    solve_network,
-)
 from core.reactors.problem import (
     Adiabatic,
     Exchange,
@@ -36,8 +27,17 @@ from core.reactors.problem import (
     StirredTank,
 )
 from core.reactors.reacted import HeatCurves, SteadyState, SteadyStates
-from core.reactors.rest_states import RestStates, rest_states
-from core.reactors.tank_balance import TankBalance, TankHeat
+from core.reactors.tank.network_states import (
+    Network,
+    at_volume,
+    crossings,
+    distinct,
+    follow,
+    more_states,
+    solve_network,
+)
+from core.reactors.tank.rest_states import RestStates, rest_states
+from core.reactors.tank.tank_balance import TankBalance, TankHeat
 from core.streams.stream import Stream
 from core.thermochemistry.heat_balance import COLDEST, HOTTEST, temperatures_known
 

@@ -26,8 +26,8 @@ from core.errors import Subject, refuse
 from core.numerics.quadrature import IndexArray
 from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.advance import Integrand, Variable, does_not_start, kinks_of
-from core.reactors.path import Place, ReactionPath, check_end
+from core.reactors.one_reaction.advance import Integrand, Variable, does_not_start, kinks_of
+from core.reactors.one_reaction.path import Place, ReactionPath, check_end
 from core.records import record
 from core.streams.stream import Stream
 

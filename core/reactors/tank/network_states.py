@@ -28,7 +28,7 @@ import numpy as np
 from core.arrays import BoolArray, FloatArray, IntArray
 from core.numerics.linear import solve_stack
 from core.numerics.straight_line import StraightLine
-from core.reactors.tank_balance import TankBalance, rows_of
+from core.reactors.tank.tank_balance import TankBalance, rows_of
 
 ACCEPTED = 1e-11
 """Backward error."""

@@ -18,8 +18,8 @@ from core.errors import refuse
 from core.numerics.quadrature import IndexArray
 from core.numerics.roots import find_one_root, find_root
 from core.rates.power_product import PowerProduct, Warmth
-from core.reactors.adiabat import Adiabat
-from core.reactors.amounts import Account, rows_of
+from core.reactors.one_reaction.adiabat import Adiabat
+from core.reactors.one_reaction.amounts import Account, rows_of
 
 _EPS = float(np.finfo(float).eps)
 _FAR = 690.0  # logit beyond which the rest of the way is no normal number

@@ -19,7 +19,7 @@ from core.numerics.quadrature import IndexArray
 from core.rates.pellet import Per
 from core.rates.rate_law import RateLaw
 from core.reactions.reaction_set import ReactionSet
-from core.reactors.path import Place, ReactionPath, reaction_path
+from core.reactors.one_reaction.path import Place, ReactionPath, reaction_path
 from core.streams.stream import Stream
 from core.thermochemistry.known_heats import KnownHeats
 

@@ -9,10 +9,11 @@ import numpy as np
 
 from core.arrays import FloatArray
 from core.errors import Amount, Fact, Fault, Note, Refused
-from core.reactors import along_path, stirred_tank
 from core.reactors.balances import Balances, Basis, rate_factor
-from core.reactors.marching import Work
+from core.reactors.march.marching import Work
 from core.reactors.observed import Fed, Observer
+from core.reactors.one_reaction import along_path, stirred_tank
+from core.reactors.one_reaction.sizing import SizingProblem, size_reactor
 from core.reactors.problem import (
     Adiabatic,
     ConversionTarget,
@@ -24,9 +25,8 @@ from core.reactors.problem import (
     Target,
 )
 from core.reactors.scanning import first_size
-from core.reactors.sizing import SizingProblem, size_reactor
-from core.reactors.steady_states import sizes_for
-from core.reactors.tanks import through_tanks
+from core.reactors.tank.steady_states import sizes_for
+from core.reactors.tank.tanks import through_tanks
 from core.reactors.telling import Course
 
 _Sized = Callable[[float], tuple[float, Course]]

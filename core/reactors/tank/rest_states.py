@@ -1,7 +1,7 @@
 """All states in which a stirred tank with one reaction can rest, proven; N cases at once.
 
 With one reaction the extent decides everything: flows are linear in it, and the
-temperature follows from the energy balance (:mod:`core.reactors.tank_balance`). What is
+temperature follows from the energy balance (:mod:`core.reactors.tank.tank_balance`). What is
 sought are the roots of V r(xi) - xi. They lie between the extents at which some
 substance is used up; in logit coordinates, u = ln[(xi - xi_b)/(xi_f - xi)], what is left
 of it is resolved however little that is. The rate as recorded is enclosed over boxes of
@@ -35,7 +35,7 @@ from core.numerics.intervals import (
     product,
     quotient,
 )
-from core.reactors.tank_balance import TankBalance
+from core.reactors.tank.tank_balance import TankBalance
 
 _EPS = float(np.finfo(float).eps)
 _FAR = 690.0  # logit beyond which the rest of the way is no normal number

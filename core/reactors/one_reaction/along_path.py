@@ -1,7 +1,7 @@
 """One reaction along its own path: the courses that quadrature finds exactly.
 
 Where one reaction runs at one temperature, or exchanges no heat, at one pressure, its
-size is an integral over its conversion (:mod:`core.reactors.path`). What leaves is
+size is an integral over its conversion (:mod:`core.reactors.one_reaction.path`). What leaves is
 then known to the last digits however close it comes to complete conversion or to
 equilibrium, which a march step by step does not give.
 """
@@ -13,10 +13,17 @@ import numpy as np
 from core.arrays import FloatArray
 from core.errors import Refused
 from core.mole_account.targets import conversion_for
-from core.reactors import plug_flow
 from core.reactors import problem as described
 from core.reactors.balances import Balances, Basis, rate_factor
 from core.reactors.observed import Observer
+from core.reactors.one_reaction import plug_flow
+from core.reactors.one_reaction.sizing import (
+    ReactorKind,
+    Sizing,
+    SizingProblem,
+    rate_reactor,
+    size_reactor,
+)
 from core.reactors.problem import (
     Adiabatic,
     Batch,
@@ -28,13 +35,6 @@ from core.reactors.problem import (
     Target,
 )
 from core.reactors.reacted import ConversionLimit
-from core.reactors.sizing import (
-    ReactorKind,
-    Sizing,
-    SizingProblem,
-    rate_reactor,
-    size_reactor,
-)
 from core.reactors.telling import Course
 
 METHOD = (

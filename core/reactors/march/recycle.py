@@ -20,7 +20,7 @@ from core.arrays import FloatArray
 from core.errors import Amount, Fact, Note, Refused, refuse
 from core.mole_account.extent_range import extent_limits
 from core.reactors.balances import Balances, Basis
-from core.reactors.marching import METHOD, Marcher, Work
+from core.reactors.march.marching import METHOD, Marcher, Work
 from core.reactors.mixing import mixed
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import (

@@ -1,0 +1,1 @@
+"""From inlet to outlet, step by step: plug flow, beds, batches, recycles."""
