@@ -75,6 +75,8 @@ class Page:
     plots : tuple of Plot
     tables : tuple of (title, Table)
         Further tables, shown in full.
+    notes : tuple of dict
+        Notes on parts of the answer, beside those on the whole of it.
     """
 
     title: str
@@ -82,6 +84,7 @@ class Page:
     numbers: tuple[tuple[str, Json | None], ...]
     plots: tuple[Plot, ...] = ()
     tables: tuple[tuple[str, Table], ...] = ()
+    notes: tuple[Json, ...] = ()
 
 
 def told(number: Json | None) -> str:

@@ -49,7 +49,9 @@ def respond(page: str) -> Response:
 
 def answer_page(answer: Answer, page: Page, provenance: Json) -> str:
     """Return the page of an answer."""
-    notes = sorted(answer.notes, key=lambda note: list(SEVERITIES).index(note["severity"]))
+    notes = sorted(
+        (*answer.notes, *page.notes), key=lambda note: list(SEVERITIES).index(note["severity"])
+    )
     return render(
         "answer.html",
         page=page,

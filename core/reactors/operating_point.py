@@ -52,6 +52,8 @@ _CLOSE = 1e-5
 """Of a bracket, to which an extreme is found; its height is then good to ten digits."""
 _FLAT = 1e-9
 """Of conversion: less than this is no difference."""
+_PLATEAU = 3
+"""So many tries of one height leave open where the largest is, which rounding would decide."""
 _WIDE = 4.0
 """Ratio of the ends beyond which what is free is tried in equal ratios."""
 _DIMENSIONS: dict[Free, str] = {
@@ -318,7 +320,10 @@ class _Search:
         return float(solved.x), float(solved.fun)
 
     def _optimum(self, tries: Sequence[_Try]) -> Optimum | None:
-        """Return where the conversion of the key is largest."""
+        """Return where the conversion of the key is largest; None on a plateau of it."""
+        heights = np.array([max(t.conversions) for t in tries])
+        if (heights.max() - heights <= _FLAT * abs(heights.max())).sum() >= _PLATEAU:
+            return None
         return self._peak(tries, lambda t: max(t.conversions))
 
     def _best_flow(self, tries: Sequence[_Try]) -> tuple[float, float]:

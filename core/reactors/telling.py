@@ -7,9 +7,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from core.arrays import FloatArray
+from core.arrays import FloatArray, IntArray
 from core.equilibrium.feed_at_equilibrium import constant_subject
-from core.errors import Amount, Note, Refused, Subject, refuse
+from core.errors import Amount, Fault, Note, Refused, Subject, refuse
 from core.mole_account.stoichiometric_table import CONSTANT_DENSITY, SOLVENT_UNKNOWN
 from core.reactors.balances import Balances
 from core.reactors.energetics import Outcome, energetics_of
@@ -261,7 +261,26 @@ def check_temperatures(problem: ReactorProblem, temperature: FloatArray | None) 
         return
     faults = beyond_range(known.of_all[0], temperature, ("reactor",))
     if faults:
-        raise Refused(faults)
+        entered = problem.feed.temperature
+        hotter = entered is not None and float(temperature.max()) > float(entered) + 1.0
+        raise Refused([_runs_away(fault) if hotter else fault for fault in faults])
+
+
+def _runs_away(fault: Fault) -> Fault:
+    """Return a fault about a temperature that the reactor comes to, with what it means."""
+    t = fault.facts.get("temperature")
+    if fault.code != "outside-correlation" or not isinstance(t, Amount):
+        return fault
+    detail = (
+        "inside the reactor it comes to {temperature}. If it is not meant to, check the rates and"
+        " their units, cool it more, or dilute the feed; runaway is not assessed here: follow local"
+        " codes and licensed practice. " + _capital(fault.detail)
+    )
+    return Fault(fault.code, fault.subject, detail, fault.facts)
+
+
+def _capital(words: str) -> str:
+    return words[:1].upper() + words[1:]
 
 
 def check_gas(problem: ReactorProblem, seen: Seen) -> None:
@@ -323,7 +342,7 @@ def _utility_outlet(problem: ReactorProblem, seen: Seen) -> float | None:
 def profile_of(problem: ReactorProblem, course: Course, seen: Seen, points: int) -> ReactorProfile:
     """Return the way through the reactor at so many of its places."""
     n = len(seen.x)
-    at = np.unique(np.round(np.linspace(0, n - 1, min(max(points, 2), n))).astype(int))
+    at = _spread(seen.x, seen.conversion, min(max(points, 2), n))
     basis = course.balances.basis
     volume = mass = length = None
     if basis != "time":
@@ -352,6 +371,22 @@ def profile_of(problem: ReactorProblem, course: Course, seen: Seen, points: int)
         rates=seen.rates[at],
         by_catalyst_mass=basis == "catalyst_mass",
     )
+
+
+def _spread(x: FloatArray, conversion: FloatArray, points: int) -> IntArray:
+    """Return which places to tell: evenly along what is a step in size or in conversion."""
+    steps = np.zeros(len(x) - 1)
+    if x[-1] > 0:
+        steps = np.diff(x) / x[-1]
+        if np.ptp(steps) > 1e-6 * float(steps.max()):
+            steps = steps + np.abs(np.diff(conversion)) / (float(np.ptp(conversion)) or 1.0)
+    if not steps.any():
+        steps = np.ones(len(x) - 1)
+    way = np.concatenate([[0.0], np.cumsum(steps)])
+    wanted = np.linspace(0.0, way[-1], points)
+    after = np.clip(np.searchsorted(way, wanted), 1, len(way) - 1)
+    nearer = after - (wanted - way[after - 1] <= way[after] - wanted)
+    return np.unique(nearer)
 
 
 def remarks(problem: ReactorProblem, outlet: Stream) -> Iterator[Note]:

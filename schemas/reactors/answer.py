@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from typing import Any
 
 import numpy as np
@@ -650,16 +650,23 @@ class _ProfileTable:
 
 
 def _stacked(name: str, parts: Sequence[tuple[str, Table]]) -> Table:
-    """Return tables one below the other, each row with the name of its own."""
-    columns: dict[str, list[Any]] = {name: []}
-    units: Mapping[str, str] = {}
-    for _, table in parts:
-        columns |= {column: [] for column in table.columns if column not in columns}
-        units = {**units, **table.units}
+    """Return tables one below the other, each row with the name of its own.
+
+    A column that has another unit in one of them, as a rate by catalyst mass beside one by
+    volume, stands apart there.
+    """
+    units: dict[str, str] = {}
+    apart: list[tuple[str, int, dict[str, list[Any]]]] = []
     for label, table in parts:
-        rows = len(next(iter(table.columns.values())))
-        columns[name] += [label] * rows
-        for column, cells_ in columns.items():
-            if column != name:
-                cells_ += table.columns.get(column, [None] * rows)
-    return Table(columns, units)
+        columns: dict[str, list[Any]] = {}
+        for column, inside in table.columns.items():
+            unit = table.units[column]
+            own = column if units.setdefault(column, unit) == unit else f"{column} (other basis)"
+            units[own], columns[own] = unit, inside
+        apart.append((label, len(next(iter(columns.values()))), columns))
+    told: dict[str, list[Any]] = {name: [], **{column: [] for column in units}}
+    for label, rows, columns in apart:
+        told[name] += [label] * rows
+        for column in units:
+            told[column] += columns.get(column, [None] * rows)
+    return Table(told, units)

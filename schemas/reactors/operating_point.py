@@ -217,7 +217,13 @@ class OperatingPointResult(OpenSchema):
         metadata=describe("In rising order of what is free; one at least."),
     )
     complete = complete(required=True)
-    optimum = fields.Nested(OptimumSchema)
+    optimum = fields.Nested(
+        OptimumSchema,
+        metadata=describe(
+            "Absent where the conversion is the same over a part of the range, as when all of the"
+            " key reacts."
+        ),
+    )
     curve = fields.Nested(
         TableSchema,
         metadata=describe("The conversion over what is free; columns value and conversion."),

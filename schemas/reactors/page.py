@@ -6,6 +6,8 @@ from collections.abc import Iterator, Mapping, Sequence
 from itertools import pairwise
 from typing import Any
 
+from core.reactors.cautions import cautions
+from core.reactors.problem import Batch
 from core.reactors.reacted import Reacted, SteadyStates
 from schemas.edge import Json
 from schemas.page import Cells, Curve, Page, Plot, course, told
@@ -65,13 +67,21 @@ class ReactorPage:
 
     def of_rating(self) -> Page:
         """Return the page that says what comes out of the reactor."""
-        conversion = _percent(self.result["conversion"])
+        conversion, problem = _percent(self.result["conversion"]), self.writer.problem
         verdict = f"This {self.what} converts {conversion} of {self.key}"
         t = self.result["outlet"].get("temperature")
         verdict += "." if t is None else f" and ends at {told(t)}."
         states = len(self.result.get("steady_states", ()))
         if states > 1:
             verdict += f" That is one of {states} steady states."
+        hot = next(
+            (n for n in cautions(problem, self.reacted) if n.code == "temperature-limit-exceeded"),
+            None,
+        )
+        if hot is not None:
+            assert problem.temperature_limit is not None
+            limit = self.writer.edge.number(problem.temperature_limit, "temperature")
+            verdict += f" It gets hotter than its limit of {told(limit)}."
         return self._page(f"Rating of a {self.what}", verdict)
 
     def _page(self, title: str, verdict: str) -> Page:
@@ -89,7 +99,7 @@ class ReactorPage:
         shown: Numbers = [(f"conversion of {self.key}", result["conversion"])]
         for name, words in (
             ("time", "time"),
-            ("volume", "volume"),
+            ("volume", "volume at the start" if self.writer.batch else "volume"),
             ("catalyst_mass", "catalyst"),
             ("length", "length of the bed"),
             ("largest_conversion", f"largest conversion of {self.key} on this way"),
@@ -100,6 +110,11 @@ class ReactorPage:
         ):
             if name in result:
                 shown.append((words, result[name]))
+        if self.writer.batch and "volume" in result["outlet"]:
+            shown.append(("volume at the end", result["outlet"]["volume"]))
+        for product, ratio in result.get("selectivities", {}).items():
+            if ratio is not None:
+                shown.append((f"selectivity to {product}", ratio))
         for name, number in result.get("space_velocities", {}).items():
             shown.append((f"hourly space velocity, {name}", number))
         shown += self._temperatures()
@@ -123,7 +138,9 @@ class ReactorPage:
             if "temperature" in result[side]:
                 yield words, result[side]["temperature"]
         if "hottest" in result:
-            yield "highest temperature", result["hottest"]["temperature"]
+            where = result["hottest"].get("stage")
+            inside = "" if where is None else f", in {where}"
+            yield f"highest temperature{inside}", result["hottest"]["temperature"]
         if "utility_outlet_temperature" in result:
             yield "utility leaves at", result["utility_outlet_temperature"]
 
@@ -212,9 +229,10 @@ class ReactorPage:
             yield _plot("Composition along the way", table, where, each, what, most=3)
 
     def _reciprocal(self, table: Table) -> Plot | None:
-        """Return 1/rate against conversion, whose area is the size; of one feed alone."""
-        rates = table.columns.get("rate")
-        if rates is None or getattr(self.writer.problem.reactor, "fed", None) is not None:
+        """Return 1/rate against conversion, whose area is the size; where all is fed at once."""
+        rates, reactor = table.columns.get("rate"), self.writer.problem.reactor
+        fed = isinstance(reactor, Batch) and reactor.fed is not None
+        if rates is None or fed or reactor.kind == "train":
             return None
         inverse = [None if not r else 1 / r for r in rates]
         unit = spell([(table.units["rate"], -1)])
@@ -309,6 +327,7 @@ STATE_COLUMNS = (
     ("temperature", "temperature"),
     ("conversion", "conversion"),
     ("stable", "stable"),
+    ("described here", "described"),
 )
 
 
@@ -379,7 +398,22 @@ def points_page(pages: Sequence[ReactorPage], result: Json) -> Page:
         numbers=tuple(numbers),
         plots=tuple(plots),
         tables=tuple(tables),
+        notes=tuple(_notes_of(result["solutions"])),
     )
+
+
+def _notes_of(solutions: Sequence[Json]) -> Iterator[Json]:
+    """Yield the notes on the solutions: once where all have it, else with whose it is."""
+    seen: dict[str, list[tuple[Json, Json]]] = {}
+    for one in solutions:
+        for note in one["notes"]:
+            seen.setdefault(note["detail"], []).append((one, note))
+    for detail, of in seen.items():
+        note = of[0][1]
+        if len(of) < len(solutions):
+            where = " and ".join(told(one["value"]) for one, _ in of)
+            note = {**note, "detail": f"at {where}: {detail}"}
+        yield note
 
 
 def _points_plot(key: str, free: str, result: Json) -> Plot:

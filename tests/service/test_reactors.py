@@ -442,3 +442,68 @@ def test_a_bed_of_liquid_loses_pressure(client):
             unknown = changed(unknown, reactor__volume=..., target={"conversion": 0.1})
         refused = post(client, question, unknown)
         assert_refused(refused, 422, "condition-missing", "/feed/pressure")
+
+
+def test_a_profile_up_to_equilibrium_may_be_read_between_its_places(client):
+    # Places even in conversion alone would leave out most of the time.
+    request = changed(
+        asked("two-temperatures-and-the-best-one"),
+        target=..., free=..., between=..., profile_points=...,
+        feed__flows=...,
+        feed__volumetric_flow=...,
+        feed__amounts={"acid": "11 kmol", "alcohol": "16 kmol"},
+        feed__volume="2.15 m3",
+        reactor={"kind": "batch", "time": "40 h"},
+    )  # fmt: skip
+    told = result(client, "rating", request)
+    columns, hours = told["profile"]["columns"], told["profile"]["units"]["time"]
+    assert hours == "h"
+    assert len(columns["time"]) == 21
+    for time in (1.3, 5.0, 9.0, 15.0, 30.0):
+        once = result(client, "rating", changed(request, reactor__time=f"{time} h"))
+        read = np.interp(time, columns["time"], columns["conversion"])
+        assert_allclose(read, value(once["conversion"]), atol=0.01)
+
+
+def test_where_all_reacts_no_largest_conversion_is_told(answers):
+    # From some temperature on the water makes no difference, and rounding would choose one.
+    told = answers["temperature-of-the-cooling-water"]
+    assert max(told["curve"]["columns"]["conversion"]) == pytest.approx(1, abs=1e-9)
+    assert "optimum" not in told
+    assert "optimum" in answers["two-temperatures-and-the-best-one"]
+
+
+def test_rates_by_volume_and_by_catalyst_mass_stand_in_columns_of_their_own(client):
+    # A bed of a stated mass tells its rate by mass, one of a stated volume by volume.
+    train = asked("three-beds-with-absorption-between")
+    last = len(train["reactor"]["stages"]) - 1
+    where = f"reactor__stages__{last}__"
+    mixed = changed(train, **{f"{where}catalyst_mass": ..., f"{where}volume": "49 m3"})
+    told = result(client, "rating", mixed)
+    response = post(client, "rating", mixed, headers={"Accept": "text/csv"})
+    head, *rows = list(csv.reader(io.StringIO(response.get_data(as_text=True))))
+    by_mass, by_volume = (
+        head.index(name) for name in ("rate [mol/(kg h)]", "rate (other basis) [kmol/(m3 h)]")
+    )
+    for row in rows:
+        profile = next(s for s in told["stages"] if s["id"] == row[0])["profile"]
+        at = by_volume if row[0] == "bed-3" else by_mass
+        assert float(row[at]) in profile["columns"]["rate"]
+        assert row[by_mass + by_volume - at] == ""
+
+
+def test_a_reactor_that_runs_out_of_all_data_is_told_as_what_it_is(client):
+    cooled = {
+        "mode": "exchange",
+        "coefficient_area_per_volume": "0.1 kW/(m3 K)",
+        "utility_temperature": "20 degC",
+    }
+    hot = changed(
+        asked("cooled-tubes-in-counter-current"), thermal=cooled,
+        reactions__0__enthalpy__heat="-140 kJ/mol",
+    )  # fmt: skip
+    response = post(client, "rating", hot)
+    assert_refused(response, 422, "outside-correlation", "/reactor")
+    detail = response.get_json()["errors"][0]["detail"]
+    assert detail.startswith("inside the reactor it comes to ")
+    assert "runaway is not assessed here" in detail

@@ -25,6 +25,7 @@ _RTOL = 1e-12
 _ENDS: FloatArray = np.array([0.0, 1.0])
 _DIED = -30 * float(np.log(10.0))  # of a rate that the fall of temperature alone has taken
 _LARGEST_U = 700.0
+_DEEP = 30.0  # -ln(1 - X/X_limit): no double tells a conversion beyond there from its limit
 _PANEL = 4.0  # in u, of one case
 
 
@@ -53,7 +54,9 @@ class Advance:
     evaluations: int
 
 
-def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
+def advance(
+    path: ReactionPath, reactions: ReactionSet, points: int, *, closing: bool = False
+) -> Advance:
     """Integrate along the path, from conversion to conversion in one call.
 
     Parameters
@@ -64,7 +67,10 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
         Names the substances in a refusal.
     points : int
         Conversions at which the integrals are wanted, 0 and the target
-        included; below 2 the target alone counts.
+        included, evenly; below 3 the target alone counts.
+    closing : bool
+        Half of them evenly in -ln(1 - X/X_limit), since the last of the way to a
+        limit takes most of the size.
 
     Raises
     ------
@@ -75,6 +81,8 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
     """
     n = path.size
     share = np.linspace(0.0, 1.0, points) if points > 2 else _ENDS
+    if closing and points > 2:
+        share = _closing(path, points)
     left = (1.0 - share) + share * path.target_left[:, None]
     gone = share * path.target_gone[:, None]
     with np.errstate(divide="ignore"):
@@ -127,6 +135,18 @@ def advance(path: ReactionPath, reactions: ReactionSet, points: int) -> Advance:
         temperature=path.temperature_at(there),
         evaluations=int(found.evaluations.sum()) + rate.size,
     )
+
+
+def _closing(path: ReactionPath, points: int) -> FloatArray:
+    """Return shares of the way to the target, shape (N, points), rising from 0 to 1."""
+    closer = points // 2
+    even = np.broadcast_to(np.linspace(0.0, 1.0, points - closer), (path.size, points - closer))
+    with np.errstate(divide="ignore"):
+        end = np.minimum(-np.log(path.target_left), _DEEP)
+    u = (np.arange(closer) + 0.5) / closer * end[:, None]
+    gone = path.target_gone[:, None]
+    far = np.divide(-np.expm1(-u), gone, out=np.zeros_like(u), where=gone > 0)
+    return np.sort(np.concatenate([even, np.minimum(far, 1.0)], axis=1), axis=1)
 
 
 class Integrand:

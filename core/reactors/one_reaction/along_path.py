@@ -142,9 +142,9 @@ def _factor(problem: ReactorProblem, basis: Basis) -> float:
 
 def _sizing(problem: ReactorProblem, conversion: float) -> SizingProblem:
     reactor = problem.reactor
-    kind: ReactorKind = plug_flow.PlugFlow()
+    kind: ReactorKind = plug_flow.PlugFlow(closing=True)
     if isinstance(reactor, Batch):
-        kind = plug_flow.Batch(reactor.hold)
+        kind = plug_flow.Batch(reactor.hold, closing=True)
     return SizingProblem(
         problem.reactions,
         problem.key,

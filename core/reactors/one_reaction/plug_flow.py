@@ -34,8 +34,15 @@ _NOTHING_LEFT = 1e-300  # of the way, when its end cannot be told from the limit
 
 @dataclass(frozen=True)
 class PlugFlow:
-    """Plug flow; a gas keeps its pressure, a liquid its density."""
+    """Plug flow; a gas keeps its pressure, a liquid its density.
 
+    Attributes
+    ----------
+    closing : bool
+        Of a profile, half of the places lie evenly in -ln(1 - X/X_limit).
+    """
+
+    closing: bool = False
     kind: ClassVar[str] = "plug-flow"
     size_dimension: ClassVar[Literal["volume", "time"]] = "volume"
     is_batch: ClassVar[bool] = False
@@ -61,7 +68,7 @@ class PlugFlow:
         points: int,
         size: FloatArray | float | None = None,
     ) -> Sizing:
-        way = advance(path, problem.reactions, points)
+        way = advance(path, problem.reactions, points, closing=self.closing)
         lead = path.lead
         found = path.key_flow * way.by_feed_volume[:, -1]
         by_volume = path.per != "catalyst-mass"
@@ -102,11 +109,14 @@ class Batch:
         In the vessel, kg; a rate by mass of catalyst needs it.
     bed_volume : float or None
         Of a bed that the charge passes, m3; a rate by volume of bed needs it.
+    closing : bool
+        As of :class:`PlugFlow`.
     """
 
     hold: Literal["volume", "pressure"] = "volume"
     catalyst_mass: float | None = None
     bed_volume: float | None = None
+    closing: bool = False
     kind: ClassVar[str] = "batch"
     size_dimension: ClassVar[Literal["volume", "time"]] = "time"
     is_batch: ClassVar[bool] = True
@@ -155,7 +165,7 @@ class Batch:
         size: FloatArray | float | None = None,
     ) -> Sizing:
         catalyst = self._catalyst(path)
-        way = advance(path, problem.reactions, points)
+        way = advance(path, problem.reactions, points, closing=self.closing)
         lead = path.lead
         if catalyst is None:
             time = path.key_concentration[:, None] * way.by_volume

@@ -49,7 +49,7 @@ _BEYOND = 0.1
 """Of their span, on both sides of the states."""
 _MOST_BOXES_REAL_GAS = 3_000
 _RESTARTS = 2  # of a network that its branch does not lead to
-_IN_VAIN = 30
+_IN_VAIN = 12
 """Evaluations of a march that one of a network counts as, besides, where nothing is found."""
 _MORE_STARTS, _FEW_STARTS = 12, 4
 """From which states are looked for beside the branch, and beside those of a neighbour."""
