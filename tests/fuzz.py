@@ -47,10 +47,11 @@ from schemas.contract import operation, published_text
 from schemas.examples import EXAMPLES
 from service.app import create_app
 from service.statuses import STATUSES
+from tests.fuzz_reactors import ReactorMaker
 
 TABLE, CONVERSION, VOLUME = "stoichiometric-table", "conversion", "volume"
-EQUILIBRIUM = "equilibrium"
-ROUTES = (TABLE, CONVERSION, VOLUME, EQUILIBRIUM)
+EQUILIBRIUM, RATING, OPERATING_POINT = "equilibrium", "rating", "operating-point"
+ROUTES = (TABLE, CONVERSION, VOLUME, EQUILIBRIUM, RATING, OPERATING_POINT)
 Json = Any
 
 
@@ -2510,7 +2511,12 @@ def one_case(maker: Maker, corpus: list[tuple[str, Json]]) -> tuple[str, bytes, 
         document = maker.from_schema(request_schema(route))
         rounds = rnd.choice([0, 0, 1])
     else:
-        route = rnd.choice([CONVERSION, CONVERSION, TABLE, VOLUME, EQUILIBRIUM])
+        route = rnd.choice([CONVERSION, CONVERSION, TABLE, VOLUME, EQUILIBRIUM, RATING])
+        if route == RATING:
+            wild = 0.15 if maker.wild else 0.03
+            route, document = ReactorMaker(rnd, wild).question()
+            rounds = rnd.choice([0, 0, 0, 0, 1, 2])
+            return _mutated(maker, route, document, None, rounds)
         make: Callable[[], tuple[Json, float | None]] = {
             CONVERSION: maker.conversion,
             TABLE: maker.table,
@@ -2520,6 +2526,12 @@ def one_case(maker: Maker, corpus: list[tuple[str, Json]]) -> tuple[str, bytes, 
         document, truth = make()
         document = copy.deepcopy(document)
         rounds = rnd.choice([0, 0, 0, 1, 1, 2, 3])
+    return _mutated(maker, route, document, truth, rounds)
+
+
+def _mutated(
+    maker: Maker, route: str, document: Json, truth: float | None, rounds: int
+) -> tuple[str, bytes, float | None]:
     for _ in range(rounds):
         # The document may no longer be what the mutation takes it for.
         with contextlib.suppress(AttributeError, TypeError, KeyError, IndexError):
@@ -2527,8 +2539,8 @@ def one_case(maker: Maker, corpus: list[tuple[str, Json]]) -> tuple[str, bytes, 
     if rounds:
         truth = None
     body = dumps(document)
-    if rnd.random() < 0.02:
-        body, truth = broken_text(rnd, body), None
+    if maker.rnd.random() < 0.02:
+        body, truth = broken_text(maker.rnd, body), None
     return route, body, truth
 
 

@@ -236,7 +236,9 @@ class ReactorMaker:
         elif "<=>" in equation:
             made["equilibrium_constant"] = {"from": "thermochemistry"}
             rate["reversible"] = {}
-        if (opaque or "C" in right or left[0].startswith("A")) and self.chance(0.8 if hot else 0.3):
+        if (opaque or "C" in right or left[0].startswith("A")) and self.chance(
+            0.95 if hot else 0.3
+        ):
             made["enthalpy"] = {
                 "heat": self.some(
                     ["-60 kJ/mol", "-20 kJ/mol", "45 kJ/mol"],
@@ -263,9 +265,8 @@ class ReactorMaker:
                 "geometry": self.rnd.choice(["sphere", "slab", "cylinder"]),
                 "size": self.some(["2 mm"], ["1 km", "1e-9 m"]),
                 "diffusivity": "3e-6 m2/s",
-                "particle_density": "1600 kg/m3",
-                "void_fraction": 0.4,
-            }
+                **({"particle_density": "1600 kg/m3"} if per == "catalyst-mass" else {}),
+            } | ({} if per == "catalyst-mass" else {"void_fraction": 0.4})
         return made
 
     def _flows(self, chemistry: _Chemistry, unit: str, size: float) -> dict[str, str]:

@@ -136,7 +136,9 @@ class _OfLaw:
         return int(np.flatnonzero(np.where(self.place.in_phase, orders, 0.0) > 0.5)[0])
 
     def _value(self, constant: TemperatureDependent, subject: Subject) -> Number:
-        return np.exp(constant.ln_at(self.place.temperature, subject))
+        # Beyond all numbers is no warning here: what reads the rate refuses what is not finite.
+        with np.errstate(over="ignore"):
+            return np.exp(constant.ln_at(self.place.temperature, subject))
 
     def _product(self, orders: FloatArray) -> Number:
         """Return the product of the driving forces to their orders."""
@@ -182,7 +184,8 @@ class _OfLaw:
                 for ln_phi, n in zip(place.ln_fugacity_coefficients, nu.tolist(), strict=True):
                     if n:
                         ln_factor = ln_factor + m * n * ln_phi
-        return np.exp(ln_factor) * product
+        with np.errstate(over="ignore", invalid="ignore"):
+            return np.exp(ln_factor) * product
 
 
 def _without_rounding(total: float, size: float) -> float:

@@ -91,7 +91,8 @@ class Observer:
         balances, layout, n = self.balances, self.balances.layout, len(x)
         flows = self._not_below_zero(y[:, : layout.substances])
         y = np.concatenate([flows, y[:, layout.substances :]], axis=1)
-        found = self._everything.on_arrays()(x, y.T)
+        with np.errstate(all="ignore"):
+            found = self._everything.on_arrays()(x, y.T)
         spread = [np.broadcast_to(np.asarray(v, dtype=float), n) for v in found]
         volume, z, held = spread[:3]
         feed = balances.feed

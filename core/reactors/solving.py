@@ -18,6 +18,7 @@ from core.reactors.problem import (
     Adiabatic,
     Batch,
     ConversionTarget,
+    Exchange,
     PackedBed,
     ReactorProblem,
     RecyclePlugFlow,
@@ -221,7 +222,8 @@ def check_feed(problem: ReactorProblem) -> None:
     Raises
     ------
     Refused
-        ``feed-does-not-fit-reactor``, ``condition-missing``, ``phase-vanishes``.
+        ``feed-does-not-fit-reactor``, ``conflicting-fields``, ``condition-missing``,
+        ``phase-vanishes``.
     """
     feed, reactor = problem.feed, problem.reactor
     batch = isinstance(reactor, Batch)
@@ -234,6 +236,14 @@ def check_feed(problem: ReactorProblem) -> None:
             if batch
             else "a continuous reactor is fed with flows and the feed states the amounts of a "
             "batch; state flows, or the reactor kind batch",
+        )
+    thermal = problem.thermal
+    if batch and isinstance(thermal, Exchange) and thermal.arrangement != "constant":
+        raise refuse(
+            "conflicting-fields",
+            ("thermal", "arrangement"),
+            "a batch is well mixed, so that a utility flows neither along it nor against it; state"
+            " 'arrangement' as constant, without 'utility_heat_capacity_flow'",
         )
     if feed.phase == "gas":
         missing = [what for what in ("temperature", "pressure") if getattr(feed, what) is None]
@@ -254,7 +264,7 @@ def check_feed(problem: ReactorProblem) -> None:
             what=what.replace("_", " "),
         )
     volume = feed.volumetric_flow
-    if volume is None or not float(volume) > 0:
+    if volume is None or not float(volume) > 0 or not feed.in_phase.any():
         raise refuse(
             "phase-vanishes",
             ("feed",),

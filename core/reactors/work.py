@@ -11,15 +11,15 @@ from dataclasses import dataclass, field
 from core.errors import refuse
 from core.numerics.integration import MOST_EVALUATIONS
 
-OPERATIONS = 100
+OPERATIONS = 150
 """Of arithmetic on floats in straight-line code, that one evaluation stands for: about 5 us."""
-ON_ARRAYS = 4
+ON_ARRAYS = 6
 """Operations on short arrays that take as long as one evaluation."""
 RECORDING = 4
 """Evaluations that recording one operation takes as long as."""
-ALONG_PATH = {"isothermal": 300, "adiabatic": 3500}
+ALONG_PATH = {"isothermal": 300, "adiabatic": 15_000}
 """Evaluations that the quadratures along the path of one reaction take as long as."""
-_ON_INTERVALS = 6
+_ON_INTERVALS = 3.5
 """Evaluations for one operation on a few intervals with their slopes."""
 _INTERVALS = 100
 """Intervals at a time that take twice as long as one."""
@@ -70,9 +70,9 @@ def price_on_floats(operations: int) -> int:
 
 def price_on_arrays(operations: int) -> int:
     """Return the same of operations on arrays of a few cases."""
-    return 20 + operations // ON_ARRAYS
+    return 15 + operations // ON_ARRAYS
 
 
 def price_on_intervals(operations: int, intervals: int) -> int:
     """Return the same of operations on intervals and their slopes."""
-    return round(20 + _ON_INTERVALS * operations * (1.0 + intervals / _INTERVALS))
+    return round(15 + _ON_INTERVALS * operations * (1.0 + intervals / _INTERVALS))

@@ -94,9 +94,9 @@ class Marcher:
         longest = max(line.operations for line in lines)
         self._price = price_on_floats(longest)
         self.work.take(RECORDING * longest)
+        self._outset: FloatArray = np.array(self._runs[0](0.0, [*y.tolist(), 0.0]))
         if self._against:
             self._runs = [self._within_sense(run) for run in self._runs]
-        self._outset: FloatArray = np.array(self._runs[0](0.0, [*y.tolist(), 0.0]))
         self.events = self._ends()
 
     def _counted(

@@ -107,7 +107,7 @@ class Branch:
     whole: bool
 
 
-_AROUND = 20
+_AROUND = 15
 """Evaluations that the linear algebra around one of a network takes as long as."""
 
 
@@ -358,7 +358,10 @@ def newton(
         waiting: IntArray = np.arange(len(rows))
         new = y[rows]
         for share in _SHORTENED:
-            tried = network.stepped(y[rows[waiting]], share * step[waiting], case[rows[waiting]])
+            with np.errstate(all="ignore"):
+                tried = network.stepped(
+                    y[rows[waiting]], share * step[waiting], case[rows[waiting]]
+                )
             new[waiting] = tried
             r = network.evaluate(tried, ln_v[rows[waiting]], case[rows[waiting]]).residual
             with np.errstate(all="ignore"):
@@ -391,8 +394,8 @@ def pseudo_time(
             break
         rows = rows[going]
         residual = at.residual[going]
-        size = np.sqrt((residual**2).sum(axis=1))
         with np.errstate(all="ignore"):
+            size = np.sqrt((residual**2).sum(axis=1))
             ratio = np.clip(np.nan_to_num(before[rows] / size, nan=1.5, posinf=3.0), 0.3, 3.0)
         length[rows] = np.clip(length[rows] * ratio, 1e-9, 1e12)
         before[rows] = size

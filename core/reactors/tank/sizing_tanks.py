@@ -8,7 +8,7 @@ from dataclasses import replace
 import numpy as np
 
 from core.arrays import FloatArray
-from core.errors import Amount, Fact, Fault, Note, Refused
+from core.errors import Amount, Fact, Fault, Note, Refused, refuse
 from core.reactors.balances import Balances, Basis, rate_factor
 from core.reactors.observed import Fed, Observer
 from core.reactors.one_reaction import along_path, stirred_tank
@@ -163,7 +163,15 @@ def tank_scale(problem: ReactorProblem, basis: Basis) -> float:
     inside.check()
     state = inside.start()
     rates = np.abs(Observer(inside).see(np.array([0.0]), state[None]).rates[0])
-    moved = float((rates @ np.abs(problem.reactions.nu)).sum())
+    with np.errstate(all="ignore"):
+        moved = float((rates @ np.abs(problem.reactions.nu)).sum())
+    if not np.isfinite(moved):
+        raise refuse(
+            "march-not-finished",
+            ("reactions",),
+            "the rates at the inlet are beyond all numbers, or have no value; check the constants,"
+            " activation energies and orders, their units, and the feed's temperature",
+        )
     return float(problem.feed.flows.sum()) / moved if moved else 1.0
 
 
