@@ -110,8 +110,9 @@ class ReactorPage:
         ):
             if name in result:
                 shown.append((words, result[name]))
-        if self.writer.batch and "volume" in result["outlet"]:
-            shown.append(("volume at the end", result["outlet"]["volume"]))
+        end = result["outlet"].get("volume") if self.writer.batch else None
+        if end is not None and end["value"] != result["volume"]["value"]:
+            shown.append(("volume at the end", end))
         for product, ratio in result.get("selectivities", {}).items():
             if ratio is not None:
                 shown.append((f"selectivity to {product}", ratio))
