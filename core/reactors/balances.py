@@ -400,7 +400,7 @@ class State:
             v = feed.volumetric_flow
             assert v is not None
             fed = self.balances.fed
-            if fed is None:
+            if fed is None or self.held:  # a vessel that holds a gas does not grow with it
                 return float(v)
             added = fed.volumetric_flow
             assert added is not None

@@ -126,7 +126,7 @@ def test_rates_beyond_all_numbers_are_refused(client: FlaskClient) -> None:
     ]
 
 
-def test_a_tank_without_a_state_says_so(client: FlaskClient) -> None:
+def test_a_tank_beyond_all_size_is_sized_as_the_law_has_it(client: FlaskClient) -> None:
     document = liquid(
         reactor={"kind": "stirred-tank"}, target={"conversion": 1}, feed=liquid()["feed"]
     )
@@ -139,6 +139,25 @@ def test_a_tank_without_a_state_says_so(client: FlaskClient) -> None:
     }
     status, answer = post(client, "volume", document)
     assert status == 422, answer
+
+
+def test_a_vessel_that_is_fed_with_gas_keeps_its_volume(client: FlaskClient) -> None:
+    gas = {"phase": "gas", "temperature": "400 K", "pressure": "1 bar"}
+    document = liquid(
+        feed=gas | {"amounts": {"A": "1 kmol"}},
+        reactor={
+            "kind": "batch",
+            "time": "2 h",
+            "fed": {"stream": gas | {"flows": {"A": "1 kmol/h"}}},
+        },
+    )
+    status, answer = post(client, "rating", document)
+    assert status == 200, answer
+    outlet = answer["result"]["outlet"]
+    # Three times the moles, at the same volume and temperature (ideal gas).
+    assert outlet["total"]["value"] == pytest.approx(3.0)
+    assert outlet["pressure"]["value"] == pytest.approx(3.0)
+    assert outlet["volume"]["value"] == pytest.approx(answer["result"]["inlet"]["volume"]["value"])
 
 
 @pytest.mark.parametrize("value", [1e9, 1e-12])
@@ -173,7 +192,7 @@ def test_no_utility_flows_along_a_batch(client: FlaskClient) -> None:
 def test_the_rise_of_a_train_with_streams_that_join_it_has_a_note(client: FlaskClient) -> None:
     status, answer = post(client, "rating", BY_NAME["three-beds-with-absorption-between"])
     assert status == 200
-    assert answer["result"]["heat"]["adiabatic_rise"] is None
+    assert "adiabatic_rise" not in answer["result"]["heat"]
     assert "heat-not-known" in {note["code"] for note in answer["notes"]}
 
 

@@ -86,7 +86,9 @@ class Marcher:
         flow = not self.balances.feed.batch and self.observer.volume_known
         y = self.balances.start()
         # A batch that is fed has one way of going while it is fed, and another after.
-        legs = (True, False) if self.balances.fed is not None else (None,)
+        ends = np.isfinite(self.balances.until)
+        fed = (True, False) if ends else (True,)
+        legs = fed if self.balances.fed is not None else (None,)
         self._legs = [replace(self.balances, feeding=leg) for leg in legs]
         lines = [_beside_time(each, flow) for each in self._legs]
         self._calls = 0
