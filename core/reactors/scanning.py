@@ -13,7 +13,7 @@ from core.errors import Refused
 
 _T = TypeVar("_T")
 
-SIZES: FloatArray = np.logspace(-5, 7, 49)
+SIZES: FloatArray = np.logspace(-4, 6, 31)
 """Over what the inlet's rates suggest."""
 _TIGHT = 1e-12
 _LEAPS = 1e-6

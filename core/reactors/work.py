@@ -29,7 +29,7 @@ _INTERVALS = 100
 class Work:
     """Evaluations of the balances that one request may still take."""
 
-    left: int = MOST_EVALUATIONS + MOST_EVALUATIONS // 2
+    left: int = 3 * MOST_EVALUATIONS
     spent: int = field(default=0)
 
     def take(self, evaluations: int) -> None:

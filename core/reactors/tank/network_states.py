@@ -354,7 +354,8 @@ def newton(
         step = _solved(at.jacobian[going], -residual)
         # Traces count less on the way than in the end.
         weight = 1.0 / (scale + 1e-4)
-        before = np.sqrt(((residual * weight) ** 2).sum(axis=1))
+        with np.errstate(all="ignore"):
+            before = np.sqrt(((residual * weight) ** 2).sum(axis=1))
         waiting: IntArray = np.arange(len(rows))
         new = y[rows]
         for share in _SHORTENED:
