@@ -11,6 +11,7 @@ The folders read as the chapters of the job:
 ``thermochemistry``   heats and equilibrium constants of reactions, adiabatic temperatures
 ``real_gas``          cubic equations of state, and whether a gas condenses
 ``equilibrium``       the composition at which reactions come to rest
-``reactors``          what size a conversion needs
-``numerics``          quadrature and root bracketing used by the chapters
+``reactors``          how big, what comes out, how to run: the way of one reaction, marches,
+                      tanks, trains
+``numerics``          recorded calculations, quadrature, roots and integration used by the chapters
 """
