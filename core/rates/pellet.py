@@ -30,7 +30,7 @@ Geometry = Literal["sphere", "cylinder", "slab"]
 Per = Literal["fluid-volume", "bed-volume", "catalyst-mass"]
 """What a rate is counted by: m3 of fluid, m3 of bed, kg of catalyst."""
 
-_NEXT_TO_NOTHING = 1e-150
+_NEXT_TO_NOTHING = 2.0**-500
 """Modulus for which no pellet is told from one of none."""
 _SERIES_BELOW = 0.2
 """Modulus below which the closed form for the sphere would lose digits."""
