@@ -30,7 +30,7 @@ Geometry = Literal["sphere", "cylinder", "slab"]
 Per = Literal["fluid-volume", "bed-volume", "catalyst-mass"]
 """What a rate is counted by: m3 of fluid, m3 of bed, kg of catalyst."""
 
-_NEXT_TO_NOTHING = 2.0**-500
+_NEXT_TO_NOTHING = 1e-150
 """Modulus for which no pellet is told from one of none."""
 _SERIES_BELOW = 0.2
 """Modulus below which the closed form for the sphere would lose digits."""
@@ -122,7 +122,9 @@ def effectiveness_factor(geometry: Geometry, modulus: Number) -> Number:
     -------
     ndarray, shape (...)
     """
-    return _FACTORS[geometry](np.maximum(array_or_symbol(modulus), _NEXT_TO_NOTHING))
+    phi = array_or_symbol(modulus)
+    factor = _FACTORS[geometry](np.maximum(phi, _NEXT_TO_NOTHING))
+    return where_below(phi, _NEXT_TO_NOTHING, 1.0, factor)
 
 
 def _of_slab(phi: Number) -> Number:

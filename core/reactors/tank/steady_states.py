@@ -134,6 +134,7 @@ def steady_states(
     curves: bool = False,
     near: Sequence[SteadyState] = (),
     work: Work | None = None,
+    most_boxes: int = MOST_BOXES,
 ) -> tuple[SteadyStates, tuple[Note, ...]]:
     """Return the steady states of one tank, and what there is to say of them.
 
@@ -151,6 +152,8 @@ def steady_states(
         along their branch only where some have gone.
     work : Work, optional
         What it may take.
+    most_boxes : int
+        After so many a proof is given up, and what is open is sampled.
 
     Returns
     -------
@@ -179,7 +182,9 @@ def steady_states(
             raise _not_found()
         return SteadyStates(states, complete=False, described=_described(states)), ()
     real = problem.gas is not None and feed.phase == "gas"
-    found = rest_states(balance, most_boxes=_MOST_BOXES_REAL_GAS if real else MOST_BOXES)
+    found = rest_states(
+        balance, most_boxes=min(most_boxes, _MOST_BOXES_REAL_GAS) if real else most_boxes
+    )
     if not len(found.case):
         raise _not_found() if balance.heat is None else _beyond(balance)
     states = _in_order(_state(problem, feed, found, k) for k in range(len(found.case)))

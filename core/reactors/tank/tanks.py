@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from core.errors import Note
+from core.numerics.all_roots import MOST_BOXES
 from core.reactors.balances import Balances, Basis
 from core.reactors.observed import Fed, Observer
 from core.reactors.problem import Exchange, ReactorProblem, Size, StirredTank, TanksInSeries
@@ -17,6 +18,8 @@ from core.reactors.telling import Course, sizes_of
 from core.reactors.work import Work
 from core.streams.stream import Stream
 
+_BOXES_OF_SEVERAL = 100
+"""For the proof of each tank of several: with tabulated heat capacities one takes a second."""
 METHOD_ONE = (
     "the steady-state balances of moles and energy; of one reaction all states, by enclosures over"
     " all conversions"
@@ -135,7 +138,14 @@ def _at_rest(
     *,
     curves: bool,
 ) -> _Tank:
-    found, notes = steady_states(problem, Size(basis, size), curves=curves, near=near, work=work)
+    found, notes = steady_states(
+        problem,
+        Size(basis, size),
+        curves=curves,
+        near=near,
+        work=work,
+        most_boxes=MOST_BOXES if curves else _BOXES_OF_SEVERAL,
+    )
     states = tuple(_of_all_fed(problem, before, state) for state in found.states)
     described = found.described
     if wanted is not None:
