@@ -43,7 +43,8 @@ CONSTANT_PRESSURE = Note("constant-pressure", "the pressure is that of the feed 
 _ENTHALPY_IDEAL = Note(
     "enthalpy-of-ideal-gas",
     "the gas model gives volumes and fugacities; enthalpies and heat capacities are those of the"
-    " ideal gas",
+    " ideal gas, but for the adiabatic equilibrium, which counts what a real gas's enthalpy differs"
+    " by and may lie a little aside",
 )
 
 
