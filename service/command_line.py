@@ -16,14 +16,14 @@ os.environ.pop("WEB_CONCURRENCY", None)
 
 import functools
 import itertools
+from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
 import click
 
-from service import __version__, logs, server
-
-_option = functools.partial(click.option, show_envvar=True, show_default=True)
+from service import __version__, configuration, logs, server
+from service.configuration import Configuration
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"]})
@@ -36,56 +36,62 @@ def main() -> None:
     """
 
 
-# The command's own prefix: without it the variables would be MOLWRIGHT_SERVE_PORT and so on.
-@main.command(context_settings={"auto_envvar_prefix": "MOLWRIGHT"})
-@_option("--host", default="127.0.0.1", help="Address to listen on; 0.0.0.0 for every one.")
-@_option("--port", type=click.IntRange(0, 65535), default=8410, help="0 takes a free one.")
-@_option(
-    "--workers",
-    type=click.IntRange(min=1),
-    default=server.cores,
-    show_default="the cores at hand",
-    help="Processes that compute.",
-)
-@_option(
-    "--threads",
-    type=click.IntRange(min=1),
-    default=16,
-    help="Requests that a process holds at once; 32 where no buffering proxy stands in front.",
-)
-@_option(
-    "--log-level",
-    type=click.Choice(["debug", "info", "warning", "error", "critical"], case_sensitive=False),
-    default="info",
-    help="Least severe messages to log; the line for each request is always written.",
-)
-@_option(
-    "--max-body",
-    type=click.IntRange(min=1),
-    default=16 * 2**20,
-    metavar="BYTES",
-    help="Largest request body taken.",
-)
-@_option(
-    "--graceful-timeout",
-    type=click.IntRange(min=1),
-    default=30,
-    metavar="SECONDS",
-    help="How long a stop waits for requests under way.",
-)
-def serve(**chosen: Any) -> None:
+def _settings(command: Callable[..., None]) -> Callable[..., None]:
+    """Give a command an option for each setting; it is called with the configuration in force."""
+
+    @functools.wraps(command)
+    def configured(**options: Any) -> None:
+        file = options.pop(configuration.FILE)
+        flags = {of.name: options.pop(of.attribute) for of in configuration.DESCRIBED}
+        said = {name: text for name, text in flags.items() if text is not None}
+        try:
+            found = configuration.load(said, os.environ, file)
+        except configuration.Faults as faults:
+            raise click.UsageError("\n".join(faults.faults)) from None
+        command(found, **options)
+
+    for of in reversed(configuration.DESCRIBED):
+        how: dict[str, Any] = {"metavar": of.kind.metavar}
+        if of.kind.switch:
+            how = {"is_flag": True, "flag_value": "true"}
+        # Read as text, and together with the other sources: so every fault is told at once.
+        option = click.option(f"--{of.name}", type=str, default=None, help=of.help, **how)
+        configured = option(configured)
+    return click.option(
+        f"--{configuration.FILE}",
+        metavar="FILE",
+        help="TOML file of settings, by the names of the options below."
+        f"  [env var: {configuration.PREFIX}{configuration.FILE.upper()}]",
+    )(configured)
+
+
+@main.command()
+@_settings
+def serve(configured: Configuration) -> None:
     """Serve until SIGTERM or Ctrl-C; SIGHUP replaces the processes one by one.
 
     The log goes to standard output, one JSON object a line; requests to paste
     go to standard error. Before SIGTERM, take the service out of the load
     balancer. Ctrl-C drops what is under way.
+
+    A flag wins over a variable of the environment, that over the file.
+    'molwright config' shows what is in force.
     """
-    settings = server.Settings(**chosen)
+    settings = configured.settings
     fault = server.address_fault(settings.host, settings.port)
     if fault:
         raise click.ClickException(fault)
     logs.configure(settings.log_level)
+    for variable in configured.unknown:
+        logs.logger().warning("not heeded", variable=variable)
     server.Application(settings, _greet).run()
+
+
+@main.command()
+@_settings
+def config(configured: Configuration) -> None:
+    """Show the settings in force and where each comes from, as a file that says the same."""
+    click.echo(configuration.told(configured), nl=False)
 
 
 def banner(address: str) -> str:

@@ -9,7 +9,6 @@ from __future__ import annotations
 import contextlib
 import errno
 import logging
-import math
 import os
 import socket
 import struct
@@ -17,9 +16,7 @@ import sys
 import threading
 import time
 from collections.abc import Callable
-from dataclasses import dataclass
 from http import HTTPStatus
-from pathlib import Path
 from typing import Any
 
 import flask
@@ -30,35 +27,13 @@ from gunicorn.http.body import ChunkedReader, LengthReader
 from gunicorn.workers.gthread import ThreadWorker
 
 from service import logs
+from service.configuration import Settings
 from service.problem_details import INTERNAL, MALFORMED, problem
 from service.statuses import STATUSES
 
 REQUEST_LINE = 4094  # bytes
 HEADER_FIELDS = 50
 HEADER_FIELD_SIZE = 8190  # bytes
-
-
-@dataclass(frozen=True)
-class Settings:
-    """What an operator chooses; the rest stands in :func:`gunicorn_settings`."""
-
-    host: str
-    port: int
-    workers: int
-    threads: int
-    log_level: str
-    max_body: int  # bytes
-    graceful_timeout: int  # s
-
-
-def cores(quota: Path = Path("/sys/fs/cgroup/cpu.max")) -> int:
-    """Return how many cores this process may use, the quota of a container included."""
-    allowed = len(os.sched_getaffinity(0))
-    try:
-        limit, period = quota.read_text().split()
-    except (OSError, ValueError):
-        return allowed
-    return allowed if limit == "max" else min(allowed, math.ceil(int(limit) / int(period)))
 
 
 def address_fault(host: str, port: int) -> str:

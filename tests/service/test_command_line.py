@@ -6,13 +6,12 @@ import socket
 import subprocess
 import sys
 
-import click
 import pytest
 from click.testing import CliRunner
 
 from schemas import contract as published
 from schemas import examples
-from service import command_line, replay, server
+from service import command_line, configuration, replay, server
 from service.app import MAX_BODY
 
 
@@ -42,44 +41,8 @@ def started(monkeypatch):
 def test_what_it_starts_with_when_nothing_is_said(started):
     settings = started()
     assert (settings.host, settings.port) == ("127.0.0.1", 8410)
-    assert (settings.workers, settings.threads) == (server.cores(), 16)
+    assert (settings.workers, settings.threads) == (configuration.cores(), 16)
     assert settings.max_body == MAX_BODY
-
-
-@pytest.mark.parametrize(
-    ("option", "text", "value"),
-    [
-        ("host", "0.0.0.0", "0.0.0.0"),  # noqa: S104
-        ("port", "80", 80),
-        ("workers", "3", 3),
-        ("threads", "5", 5),
-        ("log-level", "DEBUG", "debug"),
-        ("max-body", "1000", 1000),
-        ("graceful-timeout", "7", 7),
-    ],
-)
-def test_every_option_is_a_variable_too(started, option, text, value):
-    name = option.replace("-", "_")
-    variable = f"MOLWRIGHT_{name.upper()}"
-    assert getattr(started(f"--{option}", text), name) == value
-    assert getattr(started(**{variable: text}), name) == value
-    shown = CliRunner().invoke(command_line.main, ["serve", "--help"]).output
-    assert f"--{option}" in shown
-    assert variable in shown
-
-
-def test_no_option_is_left_out_of_the_list_above():
-    (parameters,) = [
-        mark.args[1]
-        for mark in test_every_option_is_a_variable_too.pytestmark
-        if mark.name == "parametrize"
-    ]
-    options = {
-        parameter.name.replace("_", "-")
-        for parameter in command_line.serve.params
-        if isinstance(parameter, click.Option)
-    }
-    assert options == {option for option, *_ in parameters}
 
 
 @pytest.mark.parametrize(
@@ -90,8 +53,8 @@ def test_a_containers_quota_bounds_the_workers(tmp_path, monkeypatch, quota, exp
     monkeypatch.setattr(os, "sched_getaffinity", lambda _pid: set(range(8)))
     file = tmp_path / "cpu.max"
     file.write_text(f"{quota}\n")
-    assert server.cores(file) == expected
-    assert server.cores(tmp_path / "missing") == 8
+    assert configuration.cores(file) == expected
+    assert configuration.cores(tmp_path / "missing") == 8
 
 
 def test_numpy_finds_one_thread_whatever_the_environment_says():
