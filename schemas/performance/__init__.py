@@ -1,0 +1,5 @@
+"""How a series of samples comes in: JSON columns, CSV and NDJSON made into core samples.
+
+``layout``   what a data sheet says of the series, as the reading needs it
+``shapes``   what a performance answer looks like
+"""
