@@ -129,9 +129,10 @@ def _label_times(axes: Any, zone: str) -> None:
     from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
 
     known = ZoneInfo(zone)
-    locator = AutoDateLocator(tz=known, minticks=3, maxticks=8)
+    locator: Any = AutoDateLocator(tz=known, minticks=3, maxticks=8)  # type: ignore[no-untyped-call]
     axes.xaxis.set_major_locator(locator)
-    axes.xaxis.set_major_formatter(ConciseDateFormatter(locator, tz=known))
+    formatter: Any = ConciseDateFormatter(locator, tz=known)  # type: ignore[no-untyped-call]
+    axes.xaxis.set_major_formatter(formatter)
 
 
 def _single(curve: Curve) -> bool:
