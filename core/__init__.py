@@ -13,5 +13,6 @@ The folders read as the chapters of the job:
 ``equilibrium``       the composition at which reactions come to rest
 ``reactors``          how big, what comes out, how to run: the way of one reaction, marches,
                       tanks, trains
+``performance``       a series of samples: which readings count, and what the reactor did
 ``numerics``          recorded calculations, quadrature, roots and integration used by the chapters
 """

@@ -28,13 +28,26 @@ class Curve:
     ----------
     label : str
     x, y : sequence of float or None, of one length
-    drawn_as : "line" or "points"
+    drawn_as : "line", "points" or "flags"
+        Flags are points that stand out from others of the same plot.
+    low, high : sequence of float or None, of the length of x, or None
+        The edges of a band about the curve.
     """
 
     label: str
     x: Cells
     y: Cells
-    drawn_as: Literal["line", "points"] = "line"
+    drawn_as: Literal["line", "points", "flags"] = "line"
+    low: Cells | None = None
+    high: Cells | None = None
+
+
+@dataclass(frozen=True)
+class Level:
+    """A value that a plot marks all along its abscissa: a limit."""
+
+    label: str
+    value: float
 
 
 @dataclass(frozen=True)
@@ -50,6 +63,9 @@ class Plot:
     says : str
         The same in a sentence or two, for who cannot see it.
     table : Table
+    levels : tuple of Level
+    time_zone : str or None
+        Where x is a time, s since 1970-01-01 UTC: the zone to show it in.
     """
 
     title: str
@@ -58,6 +74,17 @@ class Plot:
     curves: tuple[Curve, ...]
     says: str
     table: Table
+    levels: tuple[Level, ...] = ()
+    time_zone: str | None = None
+
+
+@dataclass(frozen=True)
+class Section:
+    """Something to read: a sentence or two, and a table where there is one."""
+
+    title: str
+    says: str
+    table: Table | None = None
 
 
 @dataclass(frozen=True)
@@ -77,6 +104,11 @@ class Page:
         Further tables, shown in full.
     notes : tuple of dict
         Notes on parts of the answer, beside those on the whole of it.
+    standing : "fine", "attention" or "bad", or None
+        What the verdict comes to, where it is one on a plant: all within limits,
+        something to act on, or data that no verdict can rest on.
+    leading : tuple of Section
+        What stands before the plots.
     """
 
     title: str
@@ -85,6 +117,8 @@ class Page:
     plots: tuple[Plot, ...] = ()
     tables: tuple[tuple[str, Table], ...] = ()
     notes: tuple[Json, ...] = ()
+    standing: Literal["fine", "attention", "bad"] | None = None
+    leading: tuple[Section, ...] = ()
 
 
 def told(number: Json | None) -> str:

@@ -14,8 +14,11 @@ import warnings
 from functools import cache
 from itertools import cycle
 from typing import Any
+from zoneinfo import ZoneInfo
 
-from schemas.page import Curve, Plot
+import numpy as np
+
+from schemas.page import Curve, Level, Plot
 
 COLOURS = ("#0072b2", "#d55e00", "#009e73", "#cc79a7", "#56b4e9", "#e69f00", "#000000")
 DASHES = ("-", "--", "-.", ":", (0, (6, 1, 1, 1, 1, 1)))
@@ -24,7 +27,11 @@ WIDTH, HEIGHT = 7.2, 4.2
 """Inches, of a plot that fits an A4 page."""
 MOST_NAMED = 12
 """Curves named beside the plot in one column; more take two."""
+MANY = 200
+"""Points of a curve from which on they are drawn small."""
 TEXT = "#1b1f23"
+FLAGS = "#b3261e"
+LIMITS = "#8c4a00"
 
 _ONE_AT_A_TIME = threading.Lock()
 """Matplotlib keeps state that threads share."""
@@ -59,17 +66,31 @@ def svg(plot: Plot) -> str:
         axes = figure.add_subplot()
         marks = cycle(MARKERS)
         lines = cycle(DASHES)
-        handles = []
+        handles, labels = [], []
         for colour, curve in zip(cycle(COLOURS), plot.curves, strict=False):
             style: dict[str, Any] = {"color": colour, "linewidth": 1.8}
-            if curve.drawn_as == "points":
-                style |= {"linestyle": "none", "marker": next(marks), "markersize": 5}
+            if curve.drawn_as == "flags":
+                # A cross, so that no reader hangs on its colour.
+                style |= {"color": FLAGS, "linestyle": "none", "marker": "x", "markersize": 7}
+            elif curve.drawn_as == "points":
+                size = 5 if len(curve.x) < MANY else 2.5
+                style |= {"linestyle": "none", "marker": next(marks), "markersize": size}
             else:
                 style["linestyle"] = next(lines)
                 if _single(curve):
                     style |= {"marker": next(marks), "markersize": 5}
-            (handle,) = axes.plot(_cells(curve.x), _cells(curve.y), **style)
+            x = _abscissae(curve, plot)
+            (handle,) = axes.plot(x, _cells(curve.y), **style)
+            if curve.low is not None and curve.high is not None:
+                low, high = _cells(curve.low), _cells(curve.high)
+                axes.fill_between(x, low, high, color=style["color"], alpha=0.18, linewidth=0)
             handles.append(handle)
+            labels.append(curve.label)
+        for level in plot.levels:
+            handles.append(_drawn_level(axes, level))
+            labels.append(level.label)
+        if plot.time_zone is not None:
+            _label_times(axes, plot.time_zone)
         axes.set_xlabel(_text(plot.x_label), color=TEXT)
         axes.set_ylabel(_text(plot.y_label), color=TEXT)
         axes.grid(visible=True, color="#d6dbe0", linewidth=0.6)
@@ -80,7 +101,7 @@ def svg(plot: Plot) -> str:
         if len(handles) > 1:
             figure.legend(
                 handles,
-                [_text(curve.label) for curve in plot.curves],
+                [_text(label) for label in labels],
                 loc="outside right upper",
                 frameon=False,
                 handlelength=3.2,
@@ -89,6 +110,29 @@ def svg(plot: Plot) -> str:
         out = io.StringIO()
         figure.savefig(out, format="svg", metadata={"Date": None, "Creator": None})
     return out.getvalue()
+
+
+def _drawn_level(axes: Any, level: Level) -> Any:
+    """Draw a limit, and see that it is within the picture."""
+    return axes.axhline(level.value, color=LIMITS, linewidth=1.2, linestyle=(0, (2, 2)))
+
+
+def _abscissae(curve: Curve, plot: Plot) -> Any:
+    x = np.array(_cells(curve.x))
+    if plot.time_zone is None:
+        return x
+    # The library counts days.
+    return x / 86400.0
+
+
+def _label_times(axes: Any, zone: str) -> None:
+    from matplotlib.dates import AutoDateLocator, ConciseDateFormatter
+
+    known = ZoneInfo(zone)
+    locator: Any = AutoDateLocator(tz=known, minticks=3, maxticks=8)  # type: ignore[no-untyped-call]
+    axes.xaxis.set_major_locator(locator)
+    formatter: Any = ConciseDateFormatter(locator, tz=known)  # type: ignore[no-untyped-call]
+    axes.xaxis.set_major_formatter(formatter)
 
 
 def _single(curve: Curve) -> bool:

@@ -18,6 +18,8 @@ from service import drawing
 POLICY = "default-src 'none'; img-src data:; style-src 'unsafe-inline'; base-uri 'none'"
 """Of what a page may load: nothing but what it holds itself."""
 SEVERITIES = {"caution": "Caution", "warning": "Warning", "info": "Note"}
+STANDINGS = {"fine": "\u2713 Fine.", "attention": "\u25b2 To act on.", "bad": "\u2715 Bad data."}
+"""In words and by a sign, so that no reader hangs on colours."""
 
 
 @cache
@@ -59,6 +61,7 @@ def answer_page(answer: Answer, page: Page, provenance: Json) -> str:
         notes=notes,
         assumed=answer.assumed,
         severities=SEVERITIES,
+        standings=STANDINGS,
         provenance=provenance,
     )
 

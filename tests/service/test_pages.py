@@ -11,7 +11,7 @@ import pytest
 
 from schemas.answer import Answer
 from schemas.examples import EXAMPLES
-from schemas.page import Curve, Page, Plot, told
+from schemas.page import Curve, Level, Page, Plot, Section, told
 from schemas.table import Table
 from service import drawing, pages
 
@@ -70,6 +70,37 @@ def test_a_gap_is_a_gap_and_a_lone_value_is_shown():
     # Markers are drawn where lines cannot be.
     assert lone.count("<use") > whole.count("<use")
     drawing.svg(plot(curves=(Curve("", [None], [None]),)))
+
+
+def test_times_bands_limits_and_flags_are_drawn():
+    hours = [1769900400.0 + 3600 * k for k in range(48)]
+    known = Curve("conversion", hours, [0.7] * 48, low=[0.6] * 48, high=[0.8] * 48)
+    flagged = Curve("beyond a limit", hours[:1], [0.7], drawn_as="flags")
+    shown = plot(
+        curves=(known, flagged),
+        levels=(Level("limit, low", 0.65),),
+        time_zone="Europe/Helsinki",
+    )
+    said = words(drawing.svg(shown))
+    assert {"conversion", "beyond a limit", "limit, low"} <= set(said)
+    # 2026-02-01 01:00 in Helsinki: the day that begins within the picture is the second.
+    assert any("Feb" in (word or "") for word in said)
+    plain = plot(curves=(Curve("conversion", hours, [0.7] * 48), flagged), time_zone="UTC")
+    assert drawing.svg(shown).count("<path") > drawing.svg(plain).count("<path")
+
+
+def test_a_page_that_stands_for_a_verdict_says_so_in_words():
+    answer = Answer({}, [], [], "method", "data")
+    bare = Page("A bed", "All limits held.", ())
+    said = {"method": "m", "data": "d", "release": "0", "digest": "sha256:0"}
+    assert "Fine." not in pages.answer_page(answer, bare, said)
+    for standing, word in (("fine", "Fine."), ("attention", "To act on."), ("bad", "Bad data.")):
+        section = Section("Exceptions", "None.", Table({"what": ["<b>"]}, {}))
+        page = Page("A bed", "All limits held.", (), standing=standing, leading=(section,))
+        shown = pages.answer_page(answer, page, said)
+        assert word in shown
+        assert "&lt;b&gt;" in shown
+        assert shown.index("Exceptions") < shown.index("What was assumed")
 
 
 class Reader(HTMLParser):

@@ -1,0 +1,8 @@
+"""The nightly job: from a series of readings to what the reactor did, in the order of the work.
+
+``rules``      what a data sheet says of time, readings, running and campaigns
+``columns``    readings in SI, sample by sample, with why a value was left out
+``timeline``   stamps in order: duplicates, gaps, campaigns, running, time on stream
+``screening``  which values of a reading count: quality, range, frozen, spikes, lag, validity
+``series``     rows as they came made into samples, by the rules
+"""
