@@ -51,6 +51,10 @@ class PlugFlow:
         """Return the size; see :func:`core.reactors.sizing.size_reactor`."""
         return self._sizing(problem, path_of(problem, constant_volume=False), points)
 
+    def along(self, problem: SizingProblem, path: ReactionPath) -> Sizing:
+        """Return the size; see :func:`sizing_along`."""
+        return self._sizing(problem, path, 0)
+
     def conversion_in(self, problem: SizingProblem, size: FloatArray | float) -> ReactionPath:
         """Return the way to what a size reaches, m3 or kg; see :func:`conversion_in`."""
         path = path_of(problem, constant_volume=False, to_limit=np.shape(size))
@@ -125,6 +129,10 @@ class Batch:
         """Return the reaction time; see :func:`core.reactors.sizing.size_reactor`."""
         path = path_of(problem, constant_volume=self.hold == "volume")
         return self._sizing(problem, path, points)
+
+    def along(self, problem: SizingProblem, path: ReactionPath) -> Sizing:
+        """Return the time; see :func:`sizing_along`."""
+        return self._sizing(problem, path, 0)
 
     def conversion_in(self, problem: SizingProblem, size: FloatArray | float) -> ReactionPath:
         """Return the way to what a time reaches, s; see :func:`conversion_in`."""
@@ -213,6 +221,13 @@ def conversion_in(problem: SizingProblem, size: FloatArray | float) -> ReactionP
     reactor = problem.reactor
     assert isinstance(reactor, PlugFlow | Batch)
     return reactor.conversion_in(problem, size)
+
+
+def sizing_along(problem: SizingProblem, path: ReactionPath) -> Sizing:
+    """Return the size, in plug flow or a batch, that a way already laid to its target needs."""
+    reactor = problem.reactor
+    assert isinstance(reactor, PlugFlow | Batch)
+    return reactor.along(problem, path)
 
 
 def _profile(path: ReactionPath, way: Advance, size: FloatArray, points: int) -> Profile | None:
