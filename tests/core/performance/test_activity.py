@@ -59,7 +59,7 @@ def series(n: int = SERIES, seed: int = 3) -> tuple[Operated, np.ndarray]:
     return Operated(flows, volumetric_flow=v), rng.uniform(0.2, 0.95, n)
 
 
-def equilibrium(reactions, k: float) -> ByAffinity:
+def equilibrium(k: float) -> ByAffinity:
     return ByAffinity(EquilibriumConstant("concentration", Constant(k)))
 
 
@@ -69,7 +69,9 @@ def test_of_a_first_order_reaction_it_is_a_logarithm():
     found = activity(first_order(), operated, conversion)
     wanted = -np.log1p(-conversion) * operated.volumetric_flow / (K * VOLUME)
     np.testing.assert_allclose(found.value, wanted, rtol=1e-13)
-    assert found.exact and not found.failed and (found.reason == FOUND).all()
+    assert found.exact
+    assert not found.failed
+    assert (found.reason == FOUND).all()
 
 
 def test_of_a_batch_it_is_a_logarithm_over_its_time():
@@ -101,7 +103,7 @@ def reversible_gas(thermal, reactor=None) -> ReactorProblem:
     """A <=> 2 R in a gas with inert, of order one, adiabatic or not."""
     reactions = reaction_set({"A": -1, "R": 2, "I": 0})
     law = replace(
-        rate_law(reactions, {"A": 1}, 1.0, reverse=equilibrium(reactions, 120.0)),
+        rate_law(reactions, {"A": 1}, 1.0, reverse=equilibrium(120.0)),
         constant=Arrhenius(3e5, 7e4),
     )
     feed = gas(reactions, {"A": 2.0, "R": 0.1, "I": 3.0}, 560.0, 3e5)
@@ -157,7 +159,8 @@ def test_the_search_finds_what_is_explicit(thermal):
     conversion = expected(design, operated, activity=true).conversion
     ln_a, reason, failed = _Bracketed(design, (0,), Work()).ln_activity(operated, conversion)
     np.testing.assert_allclose(np.exp(ln_a), true, rtol=1e-6)
-    assert (reason == FOUND).all() and not failed
+    assert (reason == FOUND).all()
+    assert not failed
 
 
 def test_its_uncertainty_is_that_of_the_closed_form():
@@ -206,7 +209,8 @@ def test_close_to_equilibrium_nothing_is_told():
     own[:, 0] = 0.003
     found = activity(design, operated, near, errors=Errors(own, np.zeros((0, 3, 8))))
     assert found.reason.tolist() == [FOUND, FOUND, EQUILIBRIUM_LIMITED]
-    assert np.isnan(found.value[2]) and np.isnan(found.u[2])
+    assert np.isnan(found.value[2])
+    assert np.isnan(found.u[2])
 
 
 def test_each_sample_fails_alone_and_says_why():
@@ -228,7 +232,8 @@ def test_each_sample_fails_alone_and_says_why():
     alone = activity(first_order(), operated.rows(slice(6, 7)), conversion[6:7])
     assert alone.value[0] == found.value[6]
     made = expected(first_order(), operated)
-    assert set(made.failed) == {5} and np.isfinite(np.delete(made.conversion, 5)).all()
+    assert set(made.failed) == {5}
+    assert np.isfinite(np.delete(made.conversion, 5)).all()
 
 
 def test_beyond_equilibrium_there_is_none():
